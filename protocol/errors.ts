@@ -1,0 +1,36 @@
+/** What went wrong, as a closed set that programs may switch on. */
+export type ProtocolErrorCode =
+  | 'size'
+  | 'envelope'
+  | 'signature'
+  | 'digest'
+  | 'scan'
+  | 'decode'
+  | 'schema'
+  | 'format'
+  | 'site-file'
+  | 'payload'
+  | 'topic'
+  | 'tensor'
+  | 'segment';
+
+/**
+ * Every refusal of `protocol`: the message says what, where, expected and got; `code` is for programs.
+ *
+ * details  small plain values that belong to the refusal (field, offset, limit)
+ */
+export class ProtocolError extends Error {
+  readonly code: ProtocolErrorCode;
+  readonly details: Readonly<Record<string, unknown>>;
+
+  constructor(
+    code: ProtocolErrorCode,
+    message: string,
+    options: { details?: Record<string, unknown>; cause?: unknown } = {},
+  ) {
+    super(message, options.cause === undefined ? undefined : { cause: options.cause });
+    this.name = 'ProtocolError';
+    this.code = code;
+    this.details = Object.freeze({ ...options.details });
+  }
+}

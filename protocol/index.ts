@@ -1,0 +1,5 @@
+export type * from './bundle.ts';
+export * from './errors.ts';
+export type * from './site.ts';
+export type * from './tensor.ts';
+export * from './version.ts';

@@ -1,0 +1,12 @@
+/** Number of the bundle document's format; a reader refuses any other. */
+export const BUNDLE_FORMAT = 1;
+/** Number of the segment format; every number that ever shipped stays readable. */
+export const SEGMENT_FORMAT = 1;
+/** Number of the filter's arithmetic: the fixed order of + - × ÷ √ that makes two machines agree to the bit. */
+export const ARITHMETIC = 1;
+/** Number carried by every JSON message as `format`. */
+export const MESSAGE_FORMAT = 1;
+/** The mark that every published message carries. */
+export const ADVISORY =
+  'Advisory estimate. Not a safety function; no SIL claimed. Do not use as the only basis for action, ' +
+  'and do not connect to interlocks or trips. Absence of a warning is not evidence of safety.';

@@ -1,0 +1,33 @@
+#!/usr/bin/env node
+/**
+ * `stillwell`: the trainer's and the desk's command line. One file a command under commands/; this file only joins them
+ * and turns refusals into one line and an exit code.
+ */
+import { ProtocolError } from '@stillwell/protocol';
+import { Command, CommanderError } from 'commander';
+import { TrainError } from './errors.ts';
+
+const commands: readonly (() => Command)[] = [];
+
+const program = new Command('stillwell')
+  .description('Learns predictive-state models from site histories, seals them, rolls them out and collects residuals.')
+  .version('0.1.0')
+  .showHelpAfterError('(add --help for an example)')
+  .exitOverride();
+for (const command of commands) program.addCommand(command().exitOverride());
+
+try {
+  await program.parseAsync();
+} catch (error) {
+  process.exitCode = report(error);
+}
+
+/** One line to standard error; 2 where the person can mend it, 1 where we must. */
+function report(error: unknown): number {
+  if (error instanceof CommanderError) return error.exitCode === 0 ? 0 : 2;
+  const message = error instanceof Error ? error.message : String(error);
+  process.stderr.write(`stillwell: ${message}\n`);
+  if (error instanceof TrainError || error instanceof ProtocolError) return 2;
+  if (process.env.STILLWELL_DEBUG && error instanceof Error) process.stderr.write(`${error.stack}\n`);
+  return 1;
+}
