@@ -63,7 +63,8 @@ describe('import rules', () => {
       diagnostics: { category: string; location: { path: string | { file: string } } }[];
     };
     const refused = diagnostics.some(
-      (entry) => entry.category === 'lint/style/noRestrictedImports' && JSON.stringify(entry.location).includes(`${file}"`),
+      (entry) =>
+        entry.category === 'lint/style/noRestrictedImports' && JSON.stringify(entry.location).includes(`${file}"`),
     );
     expect(refused).toBe(!allowed);
   });
