@@ -14,7 +14,7 @@ const sources = rooms.flatMap((room) =>
 );
 
 /** Names of exported declarations that no block comment ends right above. */
-export function undocumented(text: string): string[] {
+function undocumented(text: string): string[] {
   const lines = text.split('\n');
   return lines.flatMap((line, index) => {
     const match = /^export (?:abstract |async )?(?:function\*?|class|const|interface|type|let) (\w+)/.exec(line);
