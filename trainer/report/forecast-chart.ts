@@ -1,0 +1,61 @@
+/**
+ * Forecasts laid end to end over held-out days, with their bounds, beside the readings that came.
+ */
+import * as Plot from '@observablehq/plot';
+import type { Hindcast, HindcastPath } from '../judge/hindcast.ts';
+import { chart, palette } from './chart.ts';
+
+interface Step {
+  readonly time: Date;
+  readonly median: number;
+  readonly lower: number;
+  readonly upper: number;
+  readonly origin: number;
+}
+
+/** Paths that follow on without overlap from `fromMs`: each starts where the one before has ended. */
+export function endToEnd(hindcast: Hindcast, fromMs: number, toMs: number): HindcastPath[] {
+  const span = hindcast.horizon * hindcast.tickMs;
+  const chosen: HindcastPath[] = [];
+  let free = Number.NEGATIVE_INFINITY;
+  for (const path of hindcast.paths) {
+    if (path.originMs < fromMs || path.originMs + span > toMs || path.originMs < free) continue;
+    chosen.push(path);
+    free = path.originMs + span;
+  }
+  return chosen;
+}
+
+/** Draws one signal over [fromMs, toMs]. */
+export function forecastChart(hindcast: Hindcast, signal: number, fromMs: number, toMs: number): string {
+  const { horizon, tickMs } = hindcast;
+  const readings = hindcast.readings[signal] as Float64Array;
+  const told: Step[] = endToEnd(hindcast, fromMs, toMs).flatMap((path) =>
+    Array.from({ length: horizon }, (_, step) => ({
+      time: new Date(path.originMs + (step + 1) * tickMs),
+      median: path.median[signal * horizon + step] as number,
+      lower: path.lower[signal * horizon + step] as number,
+      upper: path.upper[signal * horizon + step] as number,
+      origin: path.originMs,
+    })),
+  );
+  const came = Array.from(readings, (value, tick) => ({
+    time: new Date(hindcast.fromMs + tick * tickMs),
+    value,
+  })).filter(({ time }) => time.getTime() >= fromMs && time.getTime() <= toMs);
+  return chart(
+    {
+      width: 920,
+      height: 230,
+      marginLeft: 55,
+      x: { type: 'utc', label: 'time (UTC)' },
+      y: { label: `${hindcast.signals[signal]} (${hindcast.units[signal]})`, grid: true, nice: true },
+      marks: [
+        Plot.areaY(told, { x: 'time', y1: 'lower', y2: 'upper', z: 'origin', fill: palette.band, fillOpacity: 0.35 }),
+        Plot.lineY(came, { x: 'time', y: 'value', stroke: palette.reading, strokeWidth: 1, strokeOpacity: 0.8 }),
+        Plot.lineY(told, { x: 'time', y: 'median', z: 'origin', stroke: palette.ours, strokeWidth: 1.6 }),
+      ],
+    },
+    `Forecast and readings of ${hindcast.signals[signal]}`,
+  );
+}

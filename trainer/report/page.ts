@@ -1,0 +1,175 @@
+/**
+ * The fit report: one HTML file with everything inside, for a plant engineer who was never taught statistics. Most
+ * important first: may it be trusted, how far ahead, what the forecasts look like, then the evidence, then the record.
+ */
+import { ADVISORY, type Site } from '@stillwell/protocol';
+import type { Survey } from '../history/survey.ts';
+import type { Hindcast } from '../judge/hindcast.ts';
+import type { FitResult } from '../pipeline.ts';
+import { palette } from './chart.ts';
+import { forecastChart } from './forecast-chart.ts';
+import { duration, escapeHtml, moment, percent, plainNumber, table } from './markup.ts';
+import { autocorrelationChart, histogramChart } from './residual-chart.ts';
+import { coverageChart, errorChart } from './skill-chart.ts';
+import { skillTable } from './skill-table.ts';
+import { style } from './style.ts';
+
+/** What the report is made of. */
+export interface ReportInput {
+  readonly site: Site;
+  readonly survey: Survey;
+  readonly result: FitResult;
+}
+
+/** Days of held-out time shown in the forecast plots, at most. */
+const SHOWN_HORIZONS = 8;
+
+/**
+ * Builds the page.
+ *
+ * throws  nothing of its own; the charts of a signal without a single held-out reading are replaced by a sentence
+ */
+export function fitReport({ site, survey, result }: ReportInput): string {
+  const title = `${site.site}: what the model knows`;
+  return `<!doctype html>
+<html lang="en"><head><meta charset="utf-8"><meta name="viewport" content="width=device-width, initial-scale=1">
+<meta http-equiv="Content-Security-Policy" content="default-src 'none'; style-src 'unsafe-inline'">
+<title>${escapeHtml(title)}</title><style>${style}</style></head><body>
+<h1>${escapeHtml(title)}</h1>
+${summary(site, result)}
+<p class="caution"><strong>${escapeHtml(ADVISORY)}</strong> Local codes and licensed practice decide.</p>
+<h2>How far ahead it can be trusted</h2>
+<p>How much smaller the squared error is than that of the strongest obvious guess (named in the cell) at that distance,
+on held-out time that the model never saw: 0 % is no better, 100 % would be perfect, below 0 % the guess is better.</p>
+${skillTable(result.hindcast)}
+${verdictTable(result)}
+<h2>Forecasts over held-out days</h2>
+<p>${key(palette.reading)}reading that came ${key(palette.ours)}forecast, issued at the left end of each piece
+${key(palette.band)}bounds meant to hold ${percent(result.hindcast.nominalCoverage)} of the readings</p>
+${perSignal(result.hindcast, (signal) => forecastPlots(result.hindcast, signal))}
+<h2>Error by distance, and how well the bounds held</h2>
+<p>${legend(result.hindcast)}</p>
+${perSignal(result.hindcast, (signal) => pair(errorChart(result.hindcast, signal), coverageChart(result.hindcast, signal)))}
+<h2>What the next-tick forecast missed</h2>
+<p>Left: size of the misses beside the normal curve of the same spread (dashed). Right: bars outside the dashed band say
+that a miss still tells something about later ones, so there is more to learn.</p>
+${perSignal(result.hindcast, (signal) => pair(histogramChart(result.hindcast, signal), autocorrelationChart(result.hindcast, signal)))}
+<h2>What was found in the history</h2>
+${findings(survey, result)}
+<h2>The record</h2>
+${record(result)}
+</body></html>
+`;
+}
+
+function summary(site: Site, { hindcast, verdicts, document }: FitResult): string {
+  const span = `${moment(hindcast.fromMs)} to ${moment(hindcast.toMs)}`;
+  return `<p class="meta">${escapeHtml(site.equipmentClass)} · tick ${duration(site.tickMs)} · forecasts to
+${duration(site.tickMs * hindcast.horizon)} ahead · bundle ${plainNumber(document.length / 1024)} KiB · judged on ${span}</p>
+<p class="verdict${verdicts.hasSkill ? '' : ' bad'}"><strong>${escapeHtml(verdicts.sentence)}</strong></p>`;
+}
+
+function verdictTable({ verdicts }: FitResult): string {
+  return table(
+    ['signal', 'verdict', 'inside bounds'],
+    verdicts.signals.map((one) => [
+      `<strong>${escapeHtml(one.signal)}</strong>`,
+      escapeHtml(one.sentence),
+      percent(one.coverage),
+    ]),
+  );
+}
+
+/** One block a signal, or one plain sentence where nothing was there to judge. */
+function perSignal(hindcast: Hindcast, draw: (signal: number) => string): string {
+  return hindcast.signals
+    .map((name, signal) => {
+      const judged = (hindcast.count[signal * hindcast.horizon] as number) > 0;
+      const body = judged ? draw(signal) : '<p>No held-out reading of this signal: nothing to judge.</p>';
+      return `<h3>${escapeHtml(name)} <span class="meta">${escapeHtml(hindcast.units[signal] ?? '')}</span></h3>${body}`;
+    })
+    .join('\n');
+}
+
+/** The days whose forecasts missed most, then the most ordinary ones. */
+function forecastPlots(hindcast: Hindcast, signal: number): string {
+  const span = hindcast.horizon * hindcast.tickMs;
+  const width = Math.min(SHOWN_HORIZONS * span, hindcast.toMs - hindcast.fromMs);
+  const windows = missByWindow(hindcast, signal, width);
+  const worst = windows.at(-1);
+  const ordinary = windows[Math.floor((windows.length - 1) / 2)];
+  if (worst === undefined || ordinary === undefined) return '<p>Held-out time is too short to draw.</p>';
+  const draw = (fromMs: number, words: string): string =>
+    `<figure>${forecastChart(hindcast, signal, fromMs, fromMs + width)}<figcaption>${words}: from ${moment(fromMs)}</figcaption></figure>`;
+  return worst === ordinary
+    ? draw(worst, 'Held-out time')
+    : draw(worst, 'Worst stretch') + draw(ordinary, 'Ordinary stretch');
+}
+
+/** Starts of windows of held-out time, from the smallest to the largest mean absolute miss of the drawn paths. */
+function missByWindow(hindcast: Hindcast, signal: number, width: number): number[] {
+  const { horizon, tickMs } = hindcast;
+  const readings = hindcast.readings[signal] as Float64Array;
+  const scored: { start: number; miss: number }[] = [];
+  for (let start = hindcast.fromMs - tickMs; start + width <= hindcast.toMs + tickMs; start += width) {
+    let sum = 0;
+    let count = 0;
+    for (const path of hindcast.paths) {
+      if (path.originMs < start || path.originMs + horizon * tickMs > start + width) continue;
+      const first = Math.round((path.originMs - hindcast.fromMs) / tickMs);
+      for (let step = 1; step <= horizon; step += 1) {
+        const miss = Math.abs(
+          (readings[first + step] as number) - (path.median[signal * horizon + step - 1] as number),
+        );
+        if (!Number.isFinite(miss)) continue;
+        sum += miss;
+        count += 1;
+      }
+    }
+    if (count > 0) scored.push({ start, miss: sum / count });
+  }
+  return scored.sort((a, b) => a.miss - b.miss || a.start - b.start).map(({ start }) => start);
+}
+
+function pair(left: string, right: string): string {
+  return `<div class="pair"><figure>${left}</figure><figure>${right}</figure></div>`;
+}
+
+function key(colour: string): string {
+  return `<span class="key" style="background:${colour}"></span>`;
+}
+
+function legend({ rivals }: Hindcast): string {
+  return [
+    key(palette.ours) + 'this model',
+    ...rivals.map((rival, index) => key(palette.rivals[index] ?? '#999') + escapeHtml(rival)),
+  ].join(' ');
+}
+
+function findings(survey: Survey, { warnings }: FitResult): string {
+  const rows = survey.findings.map((finding) => [escapeHtml(finding.kind), escapeHtml(finding.sentence)]);
+  const listed = rows.length > 0 ? table(['what', 'where and how much'], rows) : '<p>Nothing out of the ordinary.</p>';
+  const warned = warnings.map((warning) => `<p class="caution">${escapeHtml(warning)}</p>`).join('');
+  return listed + warned;
+}
+
+function record({ bundle, chosen, audit, learn, calibrate }: FitResult): string {
+  const tick = bundle.tickMs;
+  const hex = (bytes: Uint8Array): string => Buffer.from(bytes).toString('hex');
+  return table(
+    ['', ''],
+    [
+      ['learned from', `${moment(learn.fromTick * tick)} to ${moment(learn.toTick * tick)}`],
+      ['penalties and bounds from', `${moment(calibrate.fromTick * tick)} to ${moment(calibrate.toTick * tick)}`],
+      [
+        'state',
+        `${chosen.order} numbers from ${chosen.featureCount} features of the past (${escapeHtml(chosen.bank)})`,
+      ],
+      ['period', chosen.periodTicks > 0 ? duration(chosen.periodTicks * tick) : 'none'],
+      ['rounding to integers cost', `${plainNumber(100 * (audit.ratio - 1))} % of the squared error`],
+      ['history digest', `<code>${hex(bundle.provenance.historyDigest)}</code>`],
+      ['survey digest', `<code>${hex(bundle.provenance.surveyDigest)}</code>`],
+      ['options', `<code>${escapeHtml(bundle.provenance.options)}</code>`],
+    ],
+  );
+}
