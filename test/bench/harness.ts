@@ -1,0 +1,118 @@
+/**
+ * What every bench suite shares: the row, how rows are printed, how a suite is found.
+ *
+ * To add a suite: write test/bench/SUITE.ts, named as in SUITES, exporting
+ *
+ *     export async function* rows(options: BenchOptions): AsyncIterable<Row> { … yield row({ … }) … }
+ *
+ * (a promise of an array will do), and nothing else is needed: run.ts looks for dist/SUITE.js. Import our packages by name
+ * only. Give `case`, `unit`, `ours`, `better`; a peer measured in the same run as `peer` with `peerName`; a figure to be
+ * held as `bar`. A peer that is not installed is not a failure: call `options.note` with the Debian package to install and
+ * leave it out. Timings: `timed` repeats and gives the least and the mean ± sd. A suite exits 0 when it ran, whatever holds.
+ */
+
+export const SUITES = ['accuracy', 'training', 'gateway', 'segments', 'desk', 'faults'] as const;
+export type SuiteName = (typeof SUITES)[number];
+
+export interface BenchOptions {
+  /** Folder with measured series (ETTh1.csv); null: seeded synthetic data instead. */
+  readonly data: string | null;
+  /** A plain line for people, on stderr under --json. */
+  readonly note: (line: string) => void;
+}
+
+/** One figure. `ratio` is ours/peer of the same run; `holds` whether ours is on the right side of `bar`. */
+export interface Row {
+  readonly suite: SuiteName;
+  readonly case: string;
+  readonly unit: string;
+  readonly ours: number;
+  readonly peer: number | null;
+  readonly peerName: string | null;
+  readonly ratio: number | null;
+  readonly better: 'lower' | 'higher';
+  readonly bar: number | null;
+  readonly holds: boolean | null;
+}
+
+/** A suite's module. */
+export interface Suite {
+  rows(options: BenchOptions): AsyncIterable<Row> | Promise<readonly Row[]>;
+}
+
+/** Fills in ratio and holds. The bar is on `ours`. */
+export function row(given: {
+  suite: SuiteName;
+  case: string;
+  unit: string;
+  ours: number;
+  better: 'lower' | 'higher';
+  peer?: number | null;
+  peerName?: string | null;
+  bar?: number | null;
+}): Row {
+  const peer = given.peer ?? null;
+  const bar = given.bar ?? null;
+  const holds = bar === null ? null : given.better === 'lower' ? given.ours <= bar : given.ours >= bar;
+  return {
+    suite: given.suite,
+    case: given.case,
+    unit: given.unit,
+    ours: given.ours,
+    peer,
+    peerName: given.peerName ?? null,
+    ratio: peer === null ? null : given.ours / peer,
+    better: given.better,
+    bar,
+    holds,
+  };
+}
+
+/** Seconds of `repeats` runs of `work`, after one that is not counted. */
+export async function timed(
+  repeats: number,
+  work: () => unknown,
+): Promise<{ least: number; mean: number; deviation: number }> {
+  await work();
+  const seconds: number[] = [];
+  for (let i = 0; i < repeats; i++) {
+    const start = performance.now();
+    await work();
+    seconds.push((performance.now() - start) / 1000);
+  }
+  const mean = seconds.reduce((sum, s) => sum + s, 0) / repeats;
+  const variance = seconds.reduce((sum, s) => sum + (s - mean) ** 2, 0) / Math.max(1, repeats - 1);
+  return { least: Math.min(...seconds), mean, deviation: Math.sqrt(variance) };
+}
+
+const COLUMNS = [
+  ['case', 44],
+  ['unit', 12],
+  ['ours', 11],
+  ['peer', 11],
+  ['ratio', 7],
+  ['bar', 11],
+  ['holds', 6],
+  ['peer name', 0],
+] as const;
+
+/** Heading of the table for people. */
+export function tableHead(): string {
+  return COLUMNS.map(([name, width]) => name.padEnd(width)).join(' ');
+}
+
+/** One row of the table for people. */
+export function tableRow(line: Row): string {
+  const holds = line.holds === null ? '' : line.holds ? 'yes' : 'NO';
+  const cells = [line.case, line.unit, number(line.ours), number(line.peer), number(line.ratio), bar(line), holds];
+  return [...cells, line.peerName ?? ''].map((cell, i) => cell.padEnd(COLUMNS[i]![1])).join(' ');
+}
+
+function bar(line: Row): string {
+  return line.bar === null ? '' : `${line.better === 'lower' ? '<=' : '>='} ${number(line.bar)}`;
+}
+
+function number(value: number | null): string {
+  if (value === null) return '';
+  return Number.isInteger(value) ? String(value) : value.toPrecision(4);
+}
