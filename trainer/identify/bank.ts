@@ -1,0 +1,90 @@
+/**
+ * The fixed feature bank: exponential means, damped resonators and ring lags, all recursive and all blind to the level
+ * of the signal. Nothing in it is trained, so nothing in the recursion can blow up; what is learned is linear in it.
+ * Poles scale to the tick: memory from 1.5 ticks up, resonators at the period and its harmonics below half the tick rate.
+ */
+
+/** Poles of a bank, per tick; the same for every channel. */
+export interface Bank {
+  /** Decays of exponential means, in (0, 1). */
+  readonly decays: readonly number[];
+  /** Complex decays, modulus < 1. */
+  readonly resonators: readonly (readonly [number, number])[];
+  /** Ticks, ascending. */
+  readonly lags: readonly number[];
+}
+
+/** Time constants of the resonators, in periods: one day, three days, a week where the period is a day. */
+const RESONATOR_PERIODS = [1, 3, 7] as const;
+const HARMONICS = 6;
+const SHORTEST_MEAN_TICKS = 1.5;
+/** Slowest mean, in periods or in horizons, whichever is longer. */
+const SLOWEST_MEAN_PERIODS = 8;
+const SLOWEST_MEAN_HORIZONS = 4;
+
+/**
+ * The widest bank worth trying on a history.
+ *
+ * shapes  none
+ * units   periodTicks and horizon in ticks (period 0: none), learnTicks the length of the learning part
+ * throws  nothing
+ * source  time constants doubling from 1.5 ticks, so that neighbouring means differ by an octave (common practice)
+ * cost    trivial
+ */
+export function designBank(periodTicks: number, horizon: number, learnTicks: number): Bank {
+  const longest = learnTicks / 10;
+  const wanted = Math.max(SLOWEST_MEAN_PERIODS * periodTicks, SLOWEST_MEAN_HORIZONS * horizon, 16);
+  const decays: number[] = [];
+  for (let tau = SHORTEST_MEAN_TICKS; tau <= Math.min(wanted, longest); tau *= 2) decays.push(Math.exp(-1 / tau));
+  const resonators: [number, number][] = [];
+  if (periodTicks > 0) {
+    for (const periods of RESONATOR_PERIODS) {
+      const tau = periods * periodTicks;
+      if (tau > longest && periods > 1) continue;
+      for (let m = 1; m <= HARMONICS && 2 * m < periodTicks; m++) {
+        const radius = Math.exp(-1 / tau);
+        const angle = (2 * Math.PI * m) / periodTicks;
+        resonators.push([radius * Math.cos(angle), radius * Math.sin(angle)]);
+      }
+    }
+  }
+  return { decays, resonators, lags: [] };
+}
+
+/**
+ * Features a channel: one a mean, two a resonator, one a lag.
+ *
+ * shapes  none
+ * units   a count
+ * throws  nothing
+ * source  none
+ * cost    trivial
+ */
+export function featureCount(bank: Bank): number {
+  return bank.decays.length + 2 * bank.resonators.length + bank.lags.length;
+}
+
+/**
+ * Ticks until the start of a run no longer shows: four of the longest time constant, or the longest lag.
+ *
+ * shapes  none
+ * units   ticks
+ * throws  nothing
+ * source  exp(-4) < 2 %
+ * cost    trivial
+ */
+export function settlingTicks(bank: Bank): number {
+  let slowest = 0;
+  for (const decay of bank.decays) slowest = Math.max(slowest, decay);
+  for (const [re, im] of bank.resonators) slowest = Math.max(slowest, Math.hypot(re, im));
+  const memory = slowest > 0 ? -4 / Math.log(slowest) : 0;
+  return Math.ceil(Math.max(memory, ...bank.lags, 1));
+}
+
+/** A name for people: what the bank holds. */
+export function bankName(bank: Bank): string {
+  const parts = [`${bank.decays.length} means`];
+  if (bank.resonators.length > 0) parts.push(`${bank.resonators.length} resonators`);
+  if (bank.lags.length > 0) parts.push(`${bank.lags.length} lags`);
+  return parts.join(', ');
+}

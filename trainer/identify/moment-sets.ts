@@ -1,0 +1,69 @@
+/**
+ * Moments added, and cut down to some features or some steps: what makes folds and banks cheap to try.
+ */
+import type { Moments } from './moments.ts';
+import type { Layout } from './ridge.ts';
+
+/**
+ * The sum of several blocks' moments.
+ *
+ * shapes  all alike
+ * units   sums over origins
+ * throws  RangeError if there are none
+ * source  moments are additive over disjoint blocks
+ * cost    O(p² + p ny H) a block
+ */
+export function addMoments(parts: readonly Moments[]): Moments {
+  if (parts.length === 0) throw new RangeError('No moments to add.');
+  if (parts.length === 1) return parts[0];
+  const features = parts[0].features.slice();
+  const future = parts[0].future.slice();
+  const energy = parts[0].energy.slice();
+  let origins = parts[0].origins;
+  for (const part of parts.slice(1)) {
+    origins += part.origins;
+    addTo(features, part.features);
+    addTo(future, part.future);
+    addTo(energy, part.energy);
+  }
+  return { origins, features, future, energy };
+}
+
+/**
+ * Moments of some features a channel and some steps.
+ *
+ * shapes  kept ascending feature indices within a channel; steps ascending, 1..H
+ * units   as the moments
+ * throws  nothing
+ * source  a principal submatrix
+ * cost    the size of the result
+ */
+export function pickMoments(
+  moments: Moments,
+  layout: Layout,
+  kept: readonly number[],
+  steps: readonly number[],
+): Moments {
+  const { channelCount, signalCount, featureCount } = layout;
+  const p = channelCount * featureCount;
+  const width = signalCount * layout.steps;
+  const rows: number[] = [];
+  for (let c = 0; c < channelCount; c++) for (const f of kept) rows.push(c * featureCount + f);
+  const cols: number[] = [];
+  for (let i = 0; i < signalCount; i++) for (const h of steps) cols.push(i * layout.steps + h - 1);
+  const features = new Float64Array(rows.length * rows.length);
+  const future = new Float64Array(rows.length * cols.length);
+  rows.forEach((row, a) => {
+    rows.forEach((col, b) => {
+      features[a * rows.length + b] = moments.features[row * p + col];
+    });
+    cols.forEach((col, b) => {
+      future[a * cols.length + b] = moments.future[row * width + col];
+    });
+  });
+  return { origins: moments.origins, features, future, energy: Float64Array.from(cols, (col) => moments.energy[col]) };
+}
+
+function addTo(into: Float64Array, what: Float64Array): void {
+  for (let k = 0; k < into.length; k++) into[k] += what[k];
+}

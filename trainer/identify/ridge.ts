@@ -1,0 +1,145 @@
+/**
+ * The map from features to the future by ridge regression in two stages, from second moments alone: each signal from its
+ * own past and the known inputs, then what that left from the past of all channels under a heavier penalty. The penalty
+ * is relative to each feature's own variance, so units and scalings do not matter. Stage two is shared work for all
+ * signals; a signal may be left out of it.
+ */
+import { cholesky, solveCholesky } from '../linalg/cholesky.ts';
+import { multiply } from '../linalg/products.ts';
+import type { Moments } from './moments.ts';
+
+/** Sizes of a set of moments. */
+export interface Layout {
+  readonly channelCount: number;
+  readonly signalCount: number;
+  /** Features a channel. */
+  readonly featureCount: number;
+  /** Future steps a signal. */
+  readonly steps: number;
+}
+
+/** A diagonal entry below this share of the largest counts as this share, so that a silent feature is held at zero. */
+const SILENT_SHARE = 1e-12;
+
+/**
+ * Features a signal's own stage may use: its own and those of the inputs.
+ *
+ * shapes  result ascending indices into p
+ * units   none
+ * throws  nothing
+ * source  own choice: inputs are declared causes, so they are not left to the cross stage
+ * cost    trivial
+ */
+export function ownFeatures(layout: Layout, signal: number): Int32Array {
+  const channels = [signal];
+  for (let c = layout.signalCount; c < layout.channelCount; c++) channels.push(c);
+  const out = new Int32Array(channels.length * layout.featureCount);
+  channels.forEach((c, k) => {
+    for (let f = 0; f < layout.featureCount; f++) out[k * layout.featureCount + f] = c * layout.featureCount + f;
+  });
+  return out;
+}
+
+/**
+ * Ridge map of one signal's future on a chosen set of features.
+ *
+ * shapes  chosen (n) feature indices; result (n × steps)
+ * units   standardised change per feature
+ * throws  TrainError 'fit' if the moments are not positive definite even with the penalty
+ * source  Hoerl & Kennard, Technometrics 12 (1970), equation 2.1, with k times each feature's second moment
+ * cost    O(n³ + n² steps)
+ */
+export function ridgeOwn(
+  moments: Moments,
+  layout: Layout,
+  signal: number,
+  chosen: Int32Array,
+  penalty: number,
+): Float64Array {
+  const p = layout.channelCount * layout.featureCount;
+  const width = layout.signalCount * layout.steps;
+  const n = chosen.length;
+  const gram = new Float64Array(n * n);
+  const map = new Float64Array(n * layout.steps);
+  for (let a = 0; a < n; a++) {
+    for (let b = 0; b < n; b++) gram[a * n + b] = moments.features[chosen[a] * p + chosen[b]];
+    const row = chosen[a] * width + signal * layout.steps;
+    for (let h = 0; h < layout.steps; h++) map[a * layout.steps + h] = moments.future[row + h];
+  }
+  addPenalty(gram, n, penalty);
+  solveCholesky(cholesky(gram, n), n, map, layout.steps);
+  return map;
+}
+
+/**
+ * Own-stage map of all signals, laid out over all features.
+ *
+ * shapes  penalties (ny); result (p × ny·steps)
+ * units   standardised change per feature
+ * throws  as `ridgeOwn`
+ * source  as `ridgeOwn`
+ * cost    ny times `ridgeOwn`
+ */
+export function ownMap(moments: Moments, layout: Layout, penalties: readonly number[]): Float64Array {
+  const width = layout.signalCount * layout.steps;
+  const out = new Float64Array(layout.channelCount * layout.featureCount * width);
+  for (let i = 0; i < layout.signalCount; i++) {
+    const chosen = ownFeatures(layout, i);
+    const map = ridgeOwn(moments, layout, i, chosen, penalties[i]);
+    chosen.forEach((f, a) => {
+      out.set(map.subarray(a * layout.steps, (a + 1) * layout.steps), f * width + i * layout.steps);
+    });
+  }
+  return out;
+}
+
+/**
+ * Cross-stage map of what the own stage left.
+ *
+ * shapes  own (p × ny·steps); result likewise, to be added to `own`
+ * units   standardised change per feature
+ * throws  as `ridgeOwn`
+ * source  as `ridgeOwn`, on the residual: its cross moments are R - S own
+ * cost    O(p³/6 + 2 p² ny steps)
+ */
+export function crossMap(moments: Moments, layout: Layout, own: Float64Array, penalty: number): Float64Array {
+  const p = layout.channelCount * layout.featureCount;
+  const width = layout.signalCount * layout.steps;
+  const map = multiply(moments.features, own, p, p, width);
+  for (let k = 0; k < map.length; k++) map[k] = moments.future[k] - map[k];
+  const gram = moments.features.slice();
+  addPenalty(gram, p, penalty);
+  solveCholesky(cholesky(gram, p), p, map, width);
+  return map;
+}
+
+/**
+ * Mean squared error of a map on a block, by moments alone: (E - 2 M·R + M'SM) / origins.
+ *
+ * shapes  map (p × ny·steps); result (ny·steps)
+ * units   standardised²
+ * throws  nothing
+ * source  definition
+ * cost    O(p² ny steps)
+ */
+export function mapError(moments: Moments, layout: Layout, map: Float64Array): Float64Array {
+  const p = layout.channelCount * layout.featureCount;
+  const width = layout.signalCount * layout.steps;
+  const pushed = multiply(moments.features, map, p, p, width);
+  const out = moments.energy.slice();
+  for (let f = 0; f < p; f++) {
+    for (let k = 0; k < width; k++) {
+      const at = f * width + k;
+      out[k] += map[at] * (pushed[at] - 2 * moments.future[at]);
+    }
+  }
+  for (let k = 0; k < width; k++) out[k] = Math.max(0, out[k]) / moments.origins;
+  return out;
+}
+
+function addPenalty(gram: Float64Array, n: number, penalty: number): void {
+  let largest = 0;
+  for (let a = 0; a < n; a++) largest = Math.max(largest, gram[a * n + a]);
+  const floor = largest > 0 ? largest * SILENT_SHARE : 1;
+  for (let a = 0; a < n; a++) gram[a * n + a] += Math.max(penalty * gram[a * n + a], floor);
+}
