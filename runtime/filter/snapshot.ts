@@ -1,0 +1,188 @@
+/**
+ * Snapshots of the state and of the bounds: exact float64 and float32 bits, little-endian, versioned, checked by CRC-32.
+ * Equal states give equal bytes (rings are written oldest first), so two machines can prove to each other that they stand
+ * at the same point by comparing checksums. A state's snapshot holds only what moves one-step predictions.
+ *
+ * | offset | size | meaning |
+ * | 0  | 4 | magic, "SWfs" (state) or "SWfb" (bounds) |
+ * | 4  | 2 | snapshot version, 1 |
+ * | 6  | 2 | arithmetic version |
+ * | 8  | 4 | CRC-32 of the model's shapes, poles, lags and scaling: another bank refuses the snapshot |
+ * | 12 | 8 | tick, float64 |
+ * | 20 | … | state: per channel started u8, passed u16, age u32, then float64 value, memories, ring oldest first |
+ * |    |   | bounds: warmed u32, radius float64 (ny × H), forecasts under way float32 (ny · H(H + 1)/2) |
+ * | end − 4 | 4 | CRC-32 of all before |
+ */
+import { ARITHMETIC } from '@stillwell/protocol';
+import { crc32 } from './checksum.ts';
+import { FilterError } from './errors.ts';
+import { type Bounds, createBounds } from './interval.ts';
+import type { LinearModel } from './model.ts';
+import { createState, type FilterState, refresh } from './state.ts';
+
+const VERSION = 1;
+const HEAD = 20;
+const STATE_MAGIC = 0x53576673;
+const BOUNDS_MAGIC = 0x53576662;
+
+/**
+ * The state's snapshot.
+ *
+ * shapes  24 + nc · (7 + 8 · (1 + memoryCount + ringLength)) bytes
+ */
+export function saveState(model: LinearModel, state: FilterState): Uint8Array {
+  const { memoryCount, ringLength } = state.bank;
+  const bytes = new Uint8Array(HEAD + model.channelCount * (7 + 8 * (1 + memoryCount + ringLength)) + 4);
+  const view = writeHead(bytes, STATE_MAGIC, model, state.tick);
+  let at = HEAD;
+  for (let c = 0; c < model.channelCount; c++) {
+    view.setUint8(at, state.started[c]);
+    view.setUint16(at + 1, state.passed[c], true);
+    view.setUint32(at + 3, state.age[c], true);
+    at = putFloats(view, at + 7, state.value, c, c + 1);
+    at = putFloats(view, at, state.memory, c * memoryCount, (c + 1) * memoryCount);
+    const ringFrom = c * ringLength;
+    at = putFloats(view, at, state.ring, ringFrom + state.ringAt, ringFrom + ringLength);
+    at = putFloats(view, at, state.ring, ringFrom, ringFrom + state.ringAt);
+  }
+  view.setUint32(at, crc32(bytes, 0, at), true);
+  return bytes;
+}
+
+/**
+ * The state a snapshot was taken of; filtering on from it gives the same bits as never having stopped. The last tick's
+ * readings and innovations are not kept: they stand as missing until the next update.
+ *
+ * throws  FilterError 'snapshot' if the bytes are damaged, of another version, or of another model
+ */
+export function restoreState(model: LinearModel, bytes: Uint8Array): FilterState {
+  const state = createState(model);
+  const { memoryCount, ringLength } = state.bank;
+  const size = HEAD + model.channelCount * (7 + 8 * (1 + memoryCount + ringLength)) + 4;
+  const view = readHead(bytes, STATE_MAGIC, model, size, 'state');
+  state.tick = view.getFloat64(12, true);
+  let at = HEAD;
+  for (let c = 0; c < model.channelCount; c++) {
+    state.started[c] = view.getUint8(at);
+    state.passed[c] = view.getUint16(at + 1, true);
+    state.age[c] = view.getUint32(at + 3, true);
+    const isInRange =
+      state.started[c] <= 1 && state.passed[c] <= model.rejectMaxTicks && state.age[c] <= 2 * model.horizon;
+    if (!isInRange) throw refusal('state', `channel ${c}`, 'counters in range', 'one beyond it');
+    at = getFloats(view, at + 7, state.value, c, c + 1);
+    at = getFloats(view, at, state.memory, c * memoryCount, (c + 1) * memoryCount);
+    at = getFloats(view, at, state.ring, c * ringLength, (c + 1) * ringLength);
+  }
+  for (const part of [state.value, state.memory, state.ring]) {
+    if (!part.every(Number.isFinite)) throw refusal('state', 'memories', 'finite numbers', 'NaN or infinity');
+  }
+  if (state.tick >= 0) refresh(model, state);
+  return state;
+}
+
+/**
+ * The bounds' snapshot; larger than the state's, since it holds the forecasts still to be scored.
+ *
+ * shapes  28 + 8 · ny · H + 2 · ny · H(H + 1) bytes
+ */
+export function saveBounds(model: LinearModel, bounds: Bounds): Uint8Array {
+  const bytes = new Uint8Array(boundsSize(bounds));
+  const view = writeHead(bytes, BOUNDS_MAGIC, model, bounds.tick);
+  view.setUint32(HEAD, bounds.warmed, true);
+  let at = putFloats(view, HEAD + 4, bounds.radius, 0, bounds.radius.length);
+  for (let k = 0; k < bounds.issued.length; k++, at += 4) view.setFloat32(at, bounds.issued[k], true);
+  view.setUint32(at, crc32(bytes, 0, at), true);
+  return bytes;
+}
+
+/**
+ * The bounds a snapshot was taken of.
+ *
+ * throws  FilterError 'snapshot' if the bytes are damaged, of another version, or of another model
+ */
+export function restoreBounds(model: LinearModel, bytes: Uint8Array): Bounds {
+  const bounds = createBounds(model);
+  const view = readHead(bytes, BOUNDS_MAGIC, model, boundsSize(bounds), 'bounds');
+  bounds.tick = view.getFloat64(12, true);
+  bounds.warmed = view.getUint32(HEAD, true);
+  let at = getFloats(view, HEAD + 4, bounds.radius, 0, bounds.radius.length);
+  for (let k = 0; k < bounds.issued.length; k++, at += 4) bounds.issued[k] = view.getFloat32(at, true);
+  for (let k = 0; k < bounds.radius.length; k++) {
+    const ceiling = bounds.ceiling[Math.floor(k / model.horizon)];
+    if (bounds.radius[k] >= bounds.floor[k] && bounds.radius[k] <= ceiling) continue;
+    throw refusal('bounds', `radius ${k}`, `${bounds.floor[k]} to ${ceiling}`, bounds.radius[k]);
+  }
+  return bounds;
+}
+
+function boundsSize(bounds: Bounds): number {
+  return HEAD + 4 + 8 * bounds.radius.length + 4 * bounds.issued.length + 4;
+}
+
+function writeHead(bytes: Uint8Array, magic: number, model: LinearModel, tick: number): DataView {
+  const view = new DataView(bytes.buffer, bytes.byteOffset, bytes.byteLength);
+  view.setUint32(0, magic, false);
+  view.setUint16(4, VERSION, true);
+  view.setUint16(6, ARITHMETIC, true);
+  view.setUint32(8, fingerprint(model), true);
+  view.setFloat64(12, tick, true);
+  return view;
+}
+
+/** Checks everything about a snapshot but its contents, cheapest first. */
+function readHead(bytes: Uint8Array, magic: number, model: LinearModel, size: number, what: string): DataView {
+  const view = new DataView(bytes.buffer, bytes.byteOffset, bytes.byteLength);
+  if (bytes.length < HEAD + 4) throw refusal(what, 'length', `${size} bytes`, `${bytes.length} bytes`);
+  if (view.getUint32(0, false) !== magic) throw refusal(what, 'magic', `a ${what} snapshot`, 'other bytes');
+  const version = view.getUint16(4, true);
+  if (version !== VERSION) throw refusal(what, 'version', VERSION, version);
+  const arithmetic = view.getUint16(6, true);
+  if (arithmetic !== ARITHMETIC) throw refusal(what, 'arithmetic', ARITHMETIC, arithmetic);
+  if (view.getUint32(8, true) !== fingerprint(model)) throw refusal(what, 'model', 'the model given', 'another one');
+  if (bytes.length !== size) throw refusal(what, 'length', `${size} bytes`, `${bytes.length} bytes`);
+  const sum = crc32(bytes, 0, size - 4);
+  const stated = view.getUint32(size - 4, true);
+  if (sum !== stated) throw refusal(what, 'CRC-32', stated.toString(16), sum.toString(16));
+  const tick = view.getFloat64(12, true);
+  if (!Number.isSafeInteger(tick) || tick < -1) throw refusal(what, 'tick', 'a whole number from -1', tick);
+  return view;
+}
+
+/** CRC-32 over what gives a snapshot's numbers their meaning. */
+function fingerprint(model: LinearModel): number {
+  const parts = [
+    Float64Array.of(model.channelCount, model.signalCount, model.horizon, model.rejectMaxTicks, model.tickMs),
+    model.decays,
+    model.resonatorRe,
+    model.resonatorIm,
+    Float64Array.from(model.lags),
+    model.mean,
+    model.scale,
+  ];
+  const count = parts.reduce((sum, part) => sum + part.length, 0);
+  const bytes = new Uint8Array(8 * count);
+  const view = new DataView(bytes.buffer);
+  let at = 0;
+  for (const part of parts) at = putFloats(view, at, part, 0, part.length);
+  return crc32(bytes);
+}
+
+function putFloats(view: DataView, at: number, values: Float64Array, from: number, until: number): number {
+  for (let k = from; k < until; k++, at += 8) view.setFloat64(at, values[k], true);
+  return at;
+}
+
+function getFloats(view: DataView, at: number, values: Float64Array, from: number, until: number): number {
+  for (let k = from; k < until; k++, at += 8) values[k] = view.getFloat64(at, true);
+  return at;
+}
+
+function refusal(what: string, field: string, expected: unknown, got: unknown): FilterError {
+  return new FilterError(
+    'snapshot',
+    `${what} snapshot, ${field}: expected ${expected}, got ${got}; start anew and warm up`,
+    {
+      details: { field, expected, got },
+    },
+  );
+}

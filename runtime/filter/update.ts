@@ -1,0 +1,106 @@
+/**
+ * Folds the readings of one tick into the state. A reading is clipped and standardised, held against its one-step
+ * forecast, and taken, unless it lies absurdly far away; a missing one is replaced by that forecast (zero innovation),
+ * which costs far less accuracy than holding the last value. Whatever the readings are, every number stays finite.
+ */
+import { advanceChannel, settleChannel } from './bank.ts';
+import { FilterError } from './errors.ts';
+import { stepAhead } from './forecast.ts';
+import type { LinearModel } from './model.ts';
+import { type FilterState, FOLDED, MISSING, PASSED_OVER, refresh } from './state.ts';
+
+/**
+ * Folds one tick into the state, in place. A NaN or infinite reading counts as missing.
+ *
+ * Guard: a reading of a signal further from its forecast than rejectSd × residualScale × √a, with a the ticks since a
+ * reading was folded in (1 where none was missed), is passed over, at most rejectMaxTicks in a row; √a, since the error
+ * of a random walk grows so. Inputs are commands and setpoints, whose jumps are real: they are never passed over.
+ *
+ * shapes  readings (nc)
+ * units   readings in units of the channels; state standardised
+ * throws  FilterError 'shape' if readings has another length; 'tick' unless tick is the last one's successor (any whole
+ *         number from 0 at the first)
+ * cost    O(d · nc·F + ny·r · d); allocates nothing
+ */
+export function update(model: LinearModel, state: FilterState, tick: number, readings: Float64Array): void {
+  checkTurn(model, state, tick, readings);
+  const isFirst = state.tick < 0;
+  if (!isFirst) pushRing(model, state);
+  for (let c = 0; c < model.channelCount; c++) {
+    const predicted = predictedValue(model, state, c, isFirst);
+    const y = readings[c];
+    // y − y is 0 for finite y alone.
+    if (y - y !== 0) missed(model, state, c, predicted);
+    else observe(model, state, c, predicted, y);
+  }
+  state.tick = tick;
+  refresh(model, state);
+}
+
+/** One-step forecast of a channel, standardised; a channel starts from its mean. */
+function predictedValue(model: LinearModel, state: FilterState, channel: number, isFirst: boolean): number {
+  if (isFirst) return 0;
+  return channel < model.signalCount ? stepAhead(model, state, channel, 1) : state.value[channel];
+}
+
+/** Puts the value of the tick before into every ring, over the oldest. */
+function pushRing(model: LinearModel, state: FilterState): void {
+  const length = state.bank.ringLength;
+  if (length === 0) return;
+  for (let c = 0; c < model.channelCount; c++) state.ring[c * length + state.ringAt] = state.value[c];
+  state.ringAt = state.ringAt + 1 === length ? 0 : state.ringAt + 1;
+}
+
+function observe(model: LinearModel, state: FilterState, c: number, predicted: number, y: number): void {
+  const clipped = Math.min(model.clipHigh[c], Math.max(model.clipLow[c], y));
+  const z = Math.min(state.high[c], Math.max(state.low[c], (clipped - model.mean[c]) / model.scale[c]));
+  const innovation = z - predicted;
+  state.reading[c] = z;
+  state.innovation[c] = innovation;
+  if (isPassedOver(model, state, c, innovation)) {
+    state.passed[c]++;
+    state.observed[c] = PASSED_OVER;
+    replace(model, state, c, predicted);
+    return;
+  }
+  state.observed[c] = FOLDED;
+  state.age[c] = 0;
+  state.passed[c] = 0;
+  state.value[c] = z;
+  if (state.started[c] === 1) {
+    advanceChannel(model, state.bank, state.memory, c, z);
+  } else {
+    state.started[c] = 1;
+    settleChannel(state.bank, state.memory, state.ring, c, z);
+  }
+}
+
+function isPassedOver(model: LinearModel, state: FilterState, c: number, innovation: number): boolean {
+  if (c >= model.signalCount || state.started[c] === 0 || state.passed[c] >= model.rejectMaxTicks) return false;
+  return Math.abs(innovation) > model.rejectSd * model.residualScale[c] * Math.sqrt(state.age[c] + 1);
+}
+
+function missed(model: LinearModel, state: FilterState, c: number, predicted: number): void {
+  state.reading[c] = Number.NaN;
+  state.innovation[c] = Number.NaN;
+  state.observed[c] = MISSING;
+  replace(model, state, c, predicted);
+}
+
+/** Folds the one-step forecast in, in the place of a reading. */
+function replace(model: LinearModel, state: FilterState, c: number, predicted: number): void {
+  if (state.age[c] < 2 * model.horizon) state.age[c]++;
+  state.value[c] = predicted;
+  advanceChannel(model, state.bank, state.memory, c, predicted);
+}
+
+function checkTurn(model: LinearModel, state: FilterState, tick: number, readings: Float64Array): void {
+  if (readings.length !== model.channelCount) {
+    throw new FilterError('shape', `readings: expected ${model.channelCount} channels, got ${readings.length}`, {
+      details: { expected: model.channelCount, got: readings.length },
+    });
+  }
+  if (Number.isSafeInteger(tick) && (state.tick < 0 ? tick >= 0 : tick === state.tick + 1)) return;
+  const expected = state.tick < 0 ? 'a whole number from 0' : `${state.tick + 1}, the successor of the last`;
+  throw new FilterError('tick', `tick: expected ${expected}, got ${tick}`, { details: { expected, got: tick } });
+}
