@@ -1,0 +1,50 @@
+/**
+ * How the readings of one tick become one value. Readings come in order of time; a counter's increment belongs to the
+ * tick of the later reading.
+ */
+import type { Aggregate } from '@stillwell/protocol';
+
+/** What is kept of the current tick and, for counters, of the reading before it. */
+export class TickValue {
+  readonly #how: Aggregate;
+  #count = 0;
+  #value = 0;
+  #counter = Number.NaN;
+  #counterTick = Number.NaN;
+
+  constructor(how: Aggregate) {
+    this.#how = how;
+  }
+
+  /** Adds a reading of tick `tick`. */
+  add(tick: number, value: number): void {
+    if (this.#how === 'increment') {
+      this.#addCounter(tick, value);
+      return;
+    }
+    const isFirst = this.#count++ === 0;
+    if (isFirst || this.#how === 'last') this.#value = value;
+    else if (this.#how === 'min') this.#value = Math.min(this.#value, value);
+    else if (this.#how === 'max') this.#value = Math.max(this.#value, value);
+    else this.#value += value;
+  }
+
+  /** A counter that falls was reset and counts from zero. Across missing ticks the increment belongs to no one tick. */
+  #addCounter(tick: number, value: number): void {
+    if (tick - this.#counterTick <= 1) {
+      this.#value += value >= this.#counter ? value - this.#counter : value;
+      this.#count++;
+    }
+    this.#counter = value;
+    this.#counterTick = tick;
+  }
+
+  /** The tick's value, NaN where it had none; then forgets it. */
+  close(): number {
+    const count = this.#count;
+    const value = this.#how === 'mean' && count > 0 ? this.#value / count : this.#value;
+    this.#count = 0;
+    this.#value = 0;
+    return count > 0 ? value : Number.NaN;
+  }
+}

@@ -1,0 +1,83 @@
+/**
+ * Where the file readers put what they find: one block a wide file, whose channels share their times, and one block a
+ * channel for long files.
+ */
+import { GrowingList } from './growing.ts';
+import type { ChannelReadings } from './history.ts';
+
+/** Readings of some channels at shared times; `values[c]` null where the block holds nothing of channel c. */
+export interface Block {
+  readonly times: GrowingList;
+  readonly values: readonly (GrowingList | null)[];
+}
+
+/** What to keep: half-open span of time. */
+export interface Span {
+  readonly fromMs: number;
+  readonly untilMs: number;
+}
+
+export class Gathering {
+  readonly channelCount: number;
+  readonly span: Span;
+  readonly #blocks: Block[] = [];
+  readonly #long: (Block | null)[];
+  /** Time of the reading before, by channel of long files; of the row before in wide files. */
+  readonly previousMs: Float64Array;
+  previousRowMs = Number.NEGATIVE_INFINITY;
+
+  constructor(channelCount: number, span: Span) {
+    this.channelCount = channelCount;
+    this.span = span;
+    this.#long = new Array<Block | null>(channelCount).fill(null);
+    this.previousMs = new Float64Array(channelCount).fill(Number.NEGATIVE_INFINITY);
+  }
+
+  /** A block for the channels of one wide file. */
+  wideBlock(channels: readonly number[]): Block {
+    const values = Array.from({ length: this.channelCount }, (_, c) =>
+      channels.includes(c) ? new GrowingList() : null,
+    );
+    const block = { times: new GrowingList(), values };
+    this.#blocks.push(block);
+    return block;
+  }
+
+  /** Adds one reading of a long file. */
+  add(channel: number, timeMs: number, value: number): void {
+    if (timeMs < this.span.fromMs || timeMs >= this.span.untilMs) return;
+    let block = this.#long[channel];
+    if (!block) {
+      block = this.wideBlock([channel]);
+      this.#long[channel] = block;
+    }
+    block.times.push(timeMs);
+    block.values[channel]?.push(value);
+  }
+
+  /** All readings by channel; channels found in the same blocks share one array of times. */
+  channels(names: readonly string[]): ChannelReadings[] {
+    const shared = new Map<string, Float64Array>();
+    return names.map((name, c) => {
+      const mine = this.#blocks.map((_, b) => b).filter((b) => this.#blocks[b]?.values[c]);
+      const key = mine.join(' ');
+      let times = shared.get(key);
+      if (!times) {
+        times = join(mine.map((b) => (this.#blocks[b] as Block).times));
+        shared.set(key, times);
+      }
+      return { name, times, values: join(mine.map((b) => (this.#blocks[b] as Block).values[c] as GrowingList)) };
+    });
+  }
+}
+
+function join(lists: readonly GrowingList[]): Float64Array {
+  if (lists.length === 1) return (lists[0] as GrowingList).take();
+  const joined = new Float64Array(lists.reduce((sum, list) => sum + list.length, 0));
+  let at = 0;
+  for (const list of lists) {
+    joined.set(list.take(), at);
+    at += list.length;
+  }
+  return joined;
+}

@@ -1,0 +1,29 @@
+/**
+ * A history from files to ticks, surveyed: the one door for every command that learns from or scores on history.
+ */
+import type { Site } from '@stillwell/protocol';
+import type { History } from './history.ts';
+import { type ReadOptions, readHistory } from './read.ts';
+import { type FoundLattice, findLattices } from './resolution.ts';
+import type { Series } from './series.ts';
+import { type Survey, surveyHistory } from './survey.ts';
+import { layOnTicks } from './ticks.ts';
+
+export interface LoadedHistory {
+  readonly history: History;
+  readonly series: Series;
+  readonly survey: Survey;
+  readonly lattices: readonly FoundLattice[];
+}
+
+/**
+ * Reads, lays on ticks and surveys.
+ *
+ * throws  TrainError 'file' or 'history' as readHistory and layOnTicks do
+ */
+export async function loadHistory(files: readonly string[], site: Site, options: ReadOptions): Promise<LoadedHistory> {
+  const history = await readHistory(files, site, options);
+  const lattices = findLattices(history, site);
+  const series = layOnTicks(history, site, lattices);
+  return { history, series, lattices, survey: surveyHistory(history, series, site) };
+}

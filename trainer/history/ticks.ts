@@ -1,0 +1,129 @@
+/**
+ * A history laid on the site's ticks: sorted by time, implausible readings left out, one value a tick by each signal's
+ * aggregate, every value on its lattice. The survey tells what was left out.
+ */
+import { createHash } from 'node:crypto';
+import { latticeIndex, latticeValue, type Signal, type Site } from '@stillwell/protocol';
+import { TrainError } from '../errors.ts';
+import { TickValue } from './aggregate.ts';
+import type { ChannelReadings, History } from './history.ts';
+import { plausibleSpan } from './plausible.ts';
+import { channelsOf } from './read.ts';
+import { findLattices, type Lattice } from './resolution.ts';
+import type { Series } from './series.ts';
+
+/** A history with more empty ticks than these to one reading has a stray time in it. */
+const MOST_EMPTY = 1000;
+const FEW_TICKS = 1_000_000;
+
+/** Positions of the readings in order of time, later ones in the file last among equals; null where they lie so already. */
+export function timeOrder(times: Float64Array): Uint32Array | null {
+  let isSorted = true;
+  for (let i = 1; i < times.length && isSorted; i++) isSorted = (times[i] as number) >= (times[i - 1] as number);
+  if (isSorted) return null;
+  const order = Uint32Array.from(times, (_, i) => i);
+  return order.sort((a, b) => (times[a] as number) - (times[b] as number) || a - b);
+}
+
+/** First and last tick with a reading; null where there is none. */
+function tickSpan(
+  channels: readonly ChannelReadings[],
+  tickMs: number,
+): { first: number; last: number; readings: number } | null {
+  let first = Number.POSITIVE_INFINITY;
+  let last = Number.NEGATIVE_INFINITY;
+  let readings = 0;
+  for (const times of new Set(channels.map((channel) => channel.times))) {
+    readings = Math.max(readings, times.length);
+    for (let i = 0; i < times.length; i++) {
+      const time = times[i] as number;
+      if (time < first) first = time;
+      if (time > last) last = time;
+    }
+  }
+  return readings === 0 ? null : { first: Math.floor(first / tickMs), last: Math.floor(last / tickMs), readings };
+}
+
+function layChannel(
+  channel: ChannelReadings,
+  signal: Signal,
+  lattice: Lattice,
+  order: Uint32Array | null,
+  span: { tickMs: number; first: number; ticks: number },
+): Float64Array {
+  const laid = new Float64Array(span.ticks).fill(Number.NaN);
+  const { low, high } = plausibleSpan(signal, channel.values);
+  const tick = new TickValue(signal.aggregate);
+  let open = -1;
+  const close = (): void => {
+    const value = tick.close();
+    if (value === value)
+      laid[open] = latticeValue(latticeIndex(value, lattice.step, lattice.offset), lattice.step, lattice.offset);
+  };
+  for (let n = 0; n < channel.times.length; n++) {
+    const i = order === null ? n : (order[n] as number);
+    const value = channel.values[i] as number;
+    if (!(value >= low && value <= high)) continue;
+    const k = Math.floor((channel.times[i] as number) / span.tickMs) - span.first;
+    if (k !== open) {
+      if (open >= 0) close();
+      open = k;
+    }
+    tick.add(k, value);
+  }
+  if (open >= 0) close();
+  return laid;
+}
+
+function digestOf(tickMs: number, firstTick: number, values: readonly Float64Array[]): Uint8Array {
+  const hash = createHash('sha256');
+  hash.update(new Uint8Array(Float64Array.of(tickMs, firstTick, values.length, values[0]?.length ?? 0).buffer));
+  for (const one of values) hash.update(new Uint8Array(one.buffer, one.byteOffset, one.byteLength));
+  return new Uint8Array(hash.digest());
+}
+
+/**
+ * Lays a history on ticks.
+ *
+ * lattices  by channel; found in the history when absent
+ * throws    TrainError 'history' where it is shorter than two ticks, or stretched out by a stray time
+ */
+export function layOnTicks(
+  history: History,
+  site: Site,
+  lattices: readonly Lattice[] = findLattices(history, site),
+): Series {
+  const { tickMs } = site;
+  const span = tickSpan(history.channels, tickMs);
+  const ticks = span === null ? 0 : span.last - span.first + 1;
+  const names = history.files.map(({ file }) => file).join(', ');
+  if (span === null || ticks < 2)
+    throw new TrainError(
+      'history',
+      `${names}: expected readings over at least two ticks of ${tickMs / 1000} s, got ${span === null ? 'none' : 'one tick'} in the time asked for; give a longer history or a shorter tick`,
+    );
+  if (ticks > FEW_TICKS && ticks / span.readings > MOST_EMPTY)
+    throw new TrainError(
+      'history',
+      `${names}: expected readings most of the time, got ${span.readings} in ${ticks} ticks from ${new Date(span.first * tickMs).toISOString()} to ${new Date(span.last * tickMs).toISOString()}; a stray time stretches the history: take that row out`,
+    );
+  const orders = new Map<Float64Array, Uint32Array | null>();
+  for (const { times } of history.channels) if (!orders.has(times)) orders.set(times, timeOrder(times));
+  const channels = channelsOf(site);
+  const values = history.channels.map((channel, c) =>
+    layChannel(channel, channels[c] as Signal, lattices[c] as Lattice, orders.get(channel.times) ?? null, {
+      tickMs,
+      first: span.first,
+      ticks,
+    }),
+  );
+  return Object.freeze({
+    tickMs,
+    firstTick: span.first,
+    ticks,
+    names: channels.map(({ name }) => name),
+    signalCount: site.signals.length,
+    values,
+    digest: digestOf(tickMs, span.first, values),
+  });
+}
