@@ -1,0 +1,265 @@
+/**
+ * Lays readings on ticks by their own time. A tick closes once nothing for it is expected any more: when the watermark
+ * (the newest reading's time, or the wall clock) has passed its end by the lateness allowed. Within the lateness the order
+ * of arrival changes nothing; later readings become corrections while the tick is still remembered, and are counted and
+ * dropped after that. Never throws on a reading.
+ */
+import type { Aggregate } from '@stillwell/protocol';
+import { aggregateTick, latestValue, type TickReadings } from './aggregate.ts';
+
+export interface AlignerOptions {
+  readonly tickMs: number;
+  readonly latenessMs: number;
+  /** (nc), signals first. */
+  readonly aggregates: readonly Aggregate[];
+  /** Closed ticks whose readings are kept for corrections. Default 720. */
+  readonly rememberTicks?: number;
+}
+
+/** What became of a reading. */
+export type Placed =
+  | 'taken'
+  | 'duplicate'
+  /** Its tick was closed; the tick's value changed. */
+  | 'corrected'
+  /** Its tick was closed; the tick's value stays. */
+  | 'late-unchanged'
+  /** Its tick is no longer remembered. */
+  | 'too-late'
+  /** Stamped implausibly far ahead. */
+  | 'future'
+  /** More readings in one tick than are kept. */
+  | 'flood';
+
+/** A changed value of a closed tick, in units of the channel. */
+export interface LateChange {
+  readonly tick: number;
+  readonly channel: number;
+  readonly value: number;
+}
+
+/** A tick as it closed; `values` (nc) is the aligner's own buffer, NaN where missing. */
+export interface ClosedTick {
+  readonly tick: number;
+  readonly values: Float64Array;
+}
+
+/** Readings of ticks still open, so that a clean stop loses none. */
+export interface OpenReadings {
+  readonly newestMs: number;
+  readonly channels: readonly number[];
+  readonly times: readonly number[];
+  readonly values: readonly number[];
+  /** (nc) last counter readings, NaN where unknown. */
+  readonly counters: readonly number[];
+}
+
+const DEFAULT_REMEMBER_TICKS = 720;
+const MAX_READINGS_PER_TICK = 4096;
+/** A stamp further ahead than this of everything before needs a second reading near it to be believed. */
+const PLAUSIBLE_JUMP_MS = 24 * 3600 * 1000;
+
+export class Aligner {
+  readonly #options: AlignerOptions;
+  readonly #rememberTicks: number;
+  readonly #values: Float64Array;
+  /** Per tick, readings by channel; open ticks and remembered closed ones alike. */
+  readonly #ticks = new Map<number, (TickReadings | undefined)[]>();
+  /** (nc) counter reading that the next tick to close counts from. */
+  readonly #counters: Float64Array;
+  /** (nc) time of the newest reading taken, NaN before the first. */
+  readonly lastReadingMs: Float64Array;
+  #nextTick: number | null = null;
+  /** Ticks before this one were closed elsewhere, with readings not known here. */
+  #closedFrom = 0;
+  #newestMs = Number.NEGATIVE_INFINITY;
+  #suspectMs = Number.NaN;
+
+  constructor(options: AlignerOptions) {
+    this.#options = options;
+    this.#rememberTicks = options.rememberTicks ?? DEFAULT_REMEMBER_TICKS;
+    this.#values = new Float64Array(options.aggregates.length);
+    this.#counters = new Float64Array(options.aggregates.length).fill(Number.NaN);
+    this.lastReadingMs = new Float64Array(options.aggregates.length).fill(Number.NaN);
+  }
+
+  /** The next tick to close; null before the first reading. */
+  get nextTick(): number | null {
+    return this.#nextTick;
+  }
+
+  /** Time of the newest reading; -Infinity before the first. */
+  get newestMs(): number {
+    return this.#newestMs;
+  }
+
+  /** Ticks before `tick` are closed, whatever came for them. */
+  startAt(tick: number): void {
+    this.#nextTick = tick;
+    this.#closedFrom = tick;
+    for (const known of this.#ticks.keys()) if (known < tick) this.#ticks.delete(known);
+  }
+
+  /**
+   * Places one reading.
+   *
+   * notAfterMs  readings stamped later are refused: the wall clock plus a little; null where only event time rules
+   * onChange    called when a closed tick's value changed
+   */
+  place(
+    channel: number,
+    timeMs: number,
+    value: number,
+    notAfterMs: number | null,
+    onChange: (change: LateChange) => void,
+  ): Placed {
+    if (!this.#isPlausible(timeMs, notAfterMs)) return 'future';
+    const tick = Math.floor(timeMs / this.#options.tickMs);
+    if (this.#nextTick !== null && tick < this.#nextTick)
+      return this.#placeLate(tick, channel, timeMs, value, onChange);
+    // Before the first tick has closed: a retained reading of last week does not make us start there.
+    if (
+      this.#nextTick === null &&
+      tick < Math.floor((this.#newestMs - this.#options.latenessMs) / this.#options.tickMs)
+    )
+      return 'too-late';
+    const placed = this.#append(tick, channel, timeMs, value);
+    if (placed !== 'taken') return placed;
+    this.#noteTime(channel, timeMs);
+    return 'taken';
+  }
+
+  /**
+   * Closes every tick that ended `latenessMs` or more before `nowMs`, in order, each by one call.
+   *
+   * nowMs  the wall clock, or null: the newest reading's time
+   */
+  close(nowMs: number | null, onTick: (closed: ClosedTick) => void): number {
+    const first = this.#nextTick ?? this.#firstTick();
+    const end = first + this.#ticksDone(nowMs, first);
+    for (let tick = first; tick < end; tick++) {
+      this.#fold(tick);
+      this.#nextTick = tick + 1;
+      this.#ticks.delete(tick - this.#rememberTicks);
+      onTick({ tick, values: this.#values });
+    }
+    return end - first;
+  }
+
+  /** How many ticks `close` would close now. */
+  due(nowMs: number | null): number {
+    return this.#ticksDone(nowMs, this.#nextTick ?? this.#firstTick());
+  }
+
+  /** Readings not yet in a closed tick, for the file a clean stop leaves. */
+  openReadings(): OpenReadings {
+    const channels: number[] = [];
+    const times: number[] = [];
+    const values: number[] = [];
+    for (const tick of [...this.#ticks.keys()].sort((a, b) => a - b)) {
+      if (this.#nextTick !== null && tick < this.#nextTick) continue;
+      this.#ticks.get(tick)!.forEach((readings, channel) => {
+        for (let i = 0; readings && i < readings.times.length; i++) {
+          channels.push(channel);
+          times.push(readings.times[i]!);
+          values.push(readings.values[i]!);
+        }
+      });
+    }
+    return { newestMs: this.#newestMs, channels, times, values, counters: [...this.#counters] };
+  }
+
+  /** Takes back what `openReadings` gave. */
+  restore(open: OpenReadings): void {
+    this.#counters.set(open.counters.slice(0, this.#counters.length));
+    for (let i = 0; i < open.times.length; i++) {
+      const tick = Math.floor(open.times[i]! / this.#options.tickMs);
+      if (this.#append(tick, open.channels[i]!, open.times[i]!, open.values[i]!) === 'taken')
+        this.#noteTime(open.channels[i]!, open.times[i]!);
+    }
+    this.#newestMs = Math.max(this.#newestMs, open.newestMs);
+  }
+
+  #firstTick(): number {
+    if (this.#ticks.size === 0) return 0;
+    const first = Math.min(...this.#ticks.keys());
+    this.#closedFrom = first;
+    return first;
+  }
+
+  /** Ticks from `first` whose end lies before the watermark. */
+  #ticksDone(nowMs: number | null, first: number): number {
+    if (this.#nextTick === null && this.#ticks.size === 0) return 0;
+    const watermark = (nowMs ?? this.#newestMs) - this.#options.latenessMs;
+    return Math.max(0, Math.floor(watermark / this.#options.tickMs) - first);
+  }
+
+  #isPlausible(timeMs: number, notAfterMs: number | null): boolean {
+    if (!Number.isFinite(timeMs) || timeMs < 0) return false;
+    if (notAfterMs !== null) return timeMs <= notAfterMs;
+    if (this.#newestMs === Number.NEGATIVE_INFINITY || timeMs - this.#newestMs <= PLAUSIBLE_JUMP_MS) return true;
+    if (Math.abs(timeMs - this.#suspectMs) <= PLAUSIBLE_JUMP_MS) return true;
+    this.#suspectMs = timeMs;
+    return false;
+  }
+
+  #noteTime(channel: number, timeMs: number): void {
+    if (timeMs > this.#newestMs) this.#newestMs = timeMs;
+    if (!(timeMs <= this.lastReadingMs[channel]!)) this.lastReadingMs[channel] = timeMs;
+  }
+
+  #append(tick: number, channel: number, timeMs: number, value: number): Placed {
+    let channels = this.#ticks.get(tick);
+    if (channels === undefined) {
+      channels = new Array<TickReadings | undefined>(this.#values.length).fill(undefined);
+      this.#ticks.set(tick, channels);
+    }
+    channels[channel] ??= { times: [], values: [] };
+    const readings = channels[channel];
+    for (let i = readings.times.length - 1; i >= 0; i--)
+      if (readings.times[i] === timeMs && readings.values[i] === value) return 'duplicate';
+    if (readings.times.length >= MAX_READINGS_PER_TICK) return 'flood';
+    readings.times.push(timeMs);
+    readings.values.push(value);
+    return 'taken';
+  }
+
+  #placeLate(
+    tick: number,
+    channel: number,
+    timeMs: number,
+    value: number,
+    onChange: (change: LateChange) => void,
+  ): Placed {
+    if (tick < Math.max(this.#closedFrom, this.#nextTick! - this.#rememberTicks)) return 'too-late';
+    const how = this.#options.aggregates[channel]!;
+    // The next tick's increment has counted it already, from the counter reading before.
+    if (how === 'increment') return 'late-unchanged';
+    const before = this.#aggregate(tick, channel);
+    const placed = this.#append(tick, channel, timeMs, value);
+    if (placed !== 'taken') return placed;
+    const after = this.#aggregate(tick, channel);
+    if (Object.is(before, after)) return 'late-unchanged';
+    onChange({ tick, channel, value: after });
+    return 'corrected';
+  }
+
+  #aggregate(tick: number, channel: number): number {
+    const readings = this.#ticks.get(tick)?.[channel];
+    return readings ? aggregateTick(this.#options.aggregates[channel]!, readings, Number.NaN) : Number.NaN;
+  }
+
+  #fold(tick: number): void {
+    const channels = this.#ticks.get(tick);
+    for (let c = 0; c < this.#values.length; c++) {
+      const readings = channels?.[c];
+      if (!readings) {
+        this.#values[c] = Number.NaN;
+        continue;
+      }
+      this.#values[c] = aggregateTick(this.#options.aggregates[c]!, readings, this.#counters[c]!);
+      if (this.#options.aggregates[c] === 'increment' && readings.times.length > 0)
+        this.#counters[c] = latestValue(readings);
+    }
+  }
+}

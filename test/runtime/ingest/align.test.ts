@@ -1,0 +1,137 @@
+import { describe, expect, test } from 'vitest';
+import { Aligner, type LateChange, type Placed } from '../../../runtime/ingest/align.ts';
+
+const TICK = 1000;
+const aligner = (latenessMs = 0, aggregates: ('last' | 'mean' | 'increment')[] = ['last'], rememberTicks = 10) =>
+  new Aligner({ tickMs: TICK, latenessMs, aggregates, rememberTicks });
+
+function close(a: Aligner, nowMs: number | null = null): [number, ...number[]][] {
+  const out: [number, ...number[]][] = [];
+  a.close(nowMs, ({ tick, values }) => out.push([tick, ...values]));
+  return out;
+}
+
+function place(a: Aligner, channel: number, time: number, value: number, changes: LateChange[] = []): Placed {
+  return a.place(channel, time, value, null, (change) => changes.push(change));
+}
+
+describe('by the readings alone', () => {
+  test('a tick closes once a reading lies past its end by the lateness', () => {
+    const a = aligner(500);
+    place(a, 0, 100, 1);
+    place(a, 0, 1400, 2);
+    expect(close(a)).toEqual([]);
+    place(a, 0, 1500, 3);
+    expect(close(a)).toEqual([[0, 1]]);
+    place(a, 0, 4600, 4);
+    expect(close(a)).toEqual([
+      [1, 3],
+      [2, Number.NaN],
+      [3, Number.NaN],
+    ]);
+  });
+
+  test('the boundary belongs to the later tick', () => {
+    const a = aligner();
+    place(a, 0, 999, 1);
+    place(a, 0, 1000, 2);
+    place(a, 0, 2000, 3);
+    expect(close(a)).toEqual([
+      [0, 1],
+      [1, 2],
+    ]);
+  });
+
+  test('a stamp days ahead is refused once and believed when a second one agrees', () => {
+    const a = aligner();
+    place(a, 0, 1000, 1);
+    const ahead = 3 * 24 * 3600 * 1000;
+    expect(place(a, 0, ahead, 2)).toBe('future');
+    expect(place(a, 0, 1500, 3)).toBe('taken');
+    expect(place(a, 0, ahead + 10, 2)).toBe('taken');
+  });
+});
+
+test('by the wall clock ticks close though nothing arrives, and future stamps are refused', () => {
+  const a = aligner(200);
+  expect(a.place(0, 5000, 1, 1500, () => {})).toBe('future');
+  expect(a.place(0, 100, 1, 1500, () => {})).toBe('taken');
+  expect(close(a, 1199)).toEqual([]);
+  expect(close(a, 1200)).toEqual([[0, 1]]);
+  expect(close(a, 3300)).toEqual([
+    [1, Number.NaN],
+    [2, Number.NaN],
+  ]);
+  expect(a.due(6200)).toBe(3);
+});
+
+describe('late readings', () => {
+  test('change a remembered tick, or leave it, and are too late after that', () => {
+    const changes: LateChange[] = [];
+    const a = aligner(0, ['last', 'mean'], 3);
+    place(a, 0, 500, 5);
+    place(a, 1, 500, 1);
+    place(a, 0, 1000, 6);
+    close(a);
+    expect(place(a, 0, 600, 7, changes)).toBe('corrected');
+    expect(place(a, 0, 100, 8, changes)).toBe('late-unchanged');
+    expect(place(a, 1, 700, 3, changes)).toBe('corrected');
+    expect(place(a, 1, 700, 3, changes)).toBe('duplicate');
+    expect(changes).toEqual([
+      { tick: 0, channel: 0, value: 7 },
+      { tick: 0, channel: 1, value: 2 },
+    ]);
+    place(a, 0, 5000, 1);
+    close(a);
+    expect(place(a, 0, 650, 9, changes)).toBe('too-late');
+  });
+
+  test('for ticks closed before this start are too late: their other readings are not known here', () => {
+    const a = aligner();
+    a.startAt(10);
+    expect(place(a, 0, 9500, 1)).toBe('too-late');
+    expect(place(a, 0, 10_500, 1)).toBe('taken');
+  });
+});
+
+test('counters give increments across ticks, through a reset, and none for the first', () => {
+  const a = aligner(0, ['increment']);
+  for (const [time, value] of [
+    [100, 50],
+    [1100, 53],
+    [1900, 60],
+    [3100, 2],
+    [4000, 2],
+  ] as const)
+    place(a, 0, time, value);
+  expect(close(a)).toEqual([
+    [0, Number.NaN],
+    [1, 10],
+    [2, Number.NaN],
+    [3, 2],
+  ]);
+});
+
+test('what was open at a clean stop comes back', () => {
+  const before = aligner(300, ['mean', 'increment']);
+  place(before, 0, 100, 1);
+  place(before, 1, 200, 10);
+  place(before, 0, 1400, 2);
+  close(before);
+  place(before, 0, 1450, 4);
+  const after = aligner(300, ['mean', 'increment']);
+  after.startAt(before.nextTick!);
+  after.restore(before.openReadings());
+  for (const a of [before, after]) place(a, 1, 2300, 13);
+  expect(close(after)).toEqual([[1, 3, Number.NaN]]);
+  expect(close(before)).toEqual([[1, 3, Number.NaN]]);
+  for (const a of [before, after]) place(a, 0, 3400, 0);
+  expect(close(after)).toEqual([[2, Number.NaN, 3]]);
+});
+
+test('a flood in one tick is bounded', () => {
+  const a = aligner();
+  let flooded = 0;
+  for (let i = 0; i < 5000; i++) if (place(a, 0, i / 10, i) === 'flood') flooded++;
+  expect(flooded).toBe(5000 - 4096);
+});
