@@ -5,9 +5,12 @@
  */
 import { ProtocolError } from '@stillwell/protocol';
 import { Command, CommanderError } from 'commander';
+import { keysCommand } from './commands/keys.ts';
+import { sealCommand } from './commands/seal.ts';
+import { showCommand } from './commands/show.ts';
 import { TrainError } from './errors.ts';
 
-const commands: readonly (() => Command)[] = [];
+const commands: readonly (() => Command)[] = [keysCommand, sealCommand, showCommand];
 
 const program = new Command('stillwell')
   .description('Learns predictive-state models from site histories, seals them, rolls them out and collects residuals.')

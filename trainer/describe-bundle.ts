@@ -1,0 +1,177 @@
+/**
+ * A bundle in words and tables: what it forecasts, how well the judge found it to, where it came from, what it weighs.
+ */
+import { type Bundle, dequantise, encode, type Tensor } from '@stillwell/protocol';
+import { hex, type OpenDocument } from './bundle-file.ts';
+import { bytesText, shortNumber, spanText, textTable } from './text-table.ts';
+
+/** Plain values for `--json`; times in ISO 8601, digests in hex. */
+export function bundleFacts({ bundle, document, digest, model }: OpenDocument) {
+  const { judge, provenance: from } = bundle;
+  return {
+    kind: bundle.kind,
+    site: bundle.site,
+    equipmentClass: bundle.equipmentClass,
+    format: bundle.format,
+    arithmetic: bundle.arithmetic,
+    digest: hex(digest),
+    schema: hex(bundle.schema),
+    madeAt: new Date(bundle.madeAtMs).toISOString(),
+    tickMs: bundle.tickMs,
+    horizon: bundle.horizon,
+    coverage: bundle.bounds.coverage,
+    warmupTicks: bundle.warmupTicks,
+    order: model.order,
+    basisCount: model.basisCount,
+    featuresPerChannel: model.featureCount,
+    channels: bundle.channels.map(({ name, role, unit, aggregate, lattice, clip, limits, residualScale, scale }) => ({
+      name,
+      role,
+      unit,
+      aggregate,
+      lattice,
+      clip,
+      limits,
+      residualSd: residualScale * scale,
+    })),
+    judge: {
+      hasSkill: judge.hasSkill,
+      override: judge.override,
+      verdicts: judge.verdicts,
+      horizons: judge.horizons,
+      rivals: judge.rivals,
+      signals: judgeRows(bundle),
+    },
+    provenance: {
+      history: hex(from.historyDigest),
+      survey: hex(from.surveyDigest),
+      from: new Date(from.firstMs).toISOString(),
+      to: new Date(from.lastMs).toISOString(),
+      ticks: from.ticks,
+      previous: from.previous === null ? null : hex(from.previous),
+      seed: from.seed,
+      options: from.options,
+      versions: from.versions,
+    },
+    bytes: { document: document.length, parts: partSizes(bundle) },
+  };
+}
+
+/** Facts of a bundle, as `bundleFacts` gives them. */
+export type BundleFacts = ReturnType<typeof bundleFacts>;
+
+/** The facts as text for a terminal. */
+export function bundleText(facts: BundleFacts): string {
+  return [
+    `Bundle of site ${facts.site} (class ${facts.equipmentClass}), ${facts.kind} kind`,
+    `  digest      ${facts.digest}`,
+    `  schema      ${facts.schema}`,
+    `  made        ${facts.madeAt}, document format ${facts.format}, arithmetic ${facts.arithmetic}`,
+    `  forecasts   ${facts.horizon} ticks of ${spanText(facts.tickMs)} ahead (${spanText(facts.horizon * facts.tickMs)}), ` +
+      `bounds meant to hold ${Math.round(facts.coverage * 100)} %`,
+    `  model       order ${facts.order}, ${facts.featuresPerChannel} features a channel, ${facts.basisCount} horizon shapes, ` +
+      `warm-up ${facts.warmupTicks} ticks`,
+    '',
+    channelTable(facts),
+    '',
+    judgeText(facts),
+    '',
+    provenanceText(facts),
+    '',
+    sizeText(facts),
+  ].join('\n');
+}
+
+function channelTable(facts: BundleFacts): string {
+  const rows = facts.channels.map((channel) => [
+    channel.name,
+    channel.role,
+    channel.unit,
+    shortNumber(channel.lattice.step, 6),
+    channel.aggregate,
+    `${shortNumber(channel.clip[0], 5)} .. ${shortNumber(channel.clip[1], 5)}`,
+    shortNumber(channel.residualSd),
+    limitsText(channel.limits),
+  ]);
+  const head = ['channel', 'role', 'unit', 'step', 'tick takes', 'clipped to', 'one-step sd', 'limits'];
+  return textTable(head, rows, [3, 6]);
+}
+
+function limitsText(limits: BundleFacts['channels'][number]['limits']): string {
+  const names = { lowLow: 'low-low', low: 'low', high: 'high', highHigh: 'high-high' } as const;
+  const set = Object.entries(names).flatMap(([key, name]) => {
+    const value = limits[key as keyof typeof names];
+    return value === null ? [] : [`${name} ${shortNumber(value, 6)}`];
+  });
+  return set.join(', ') || '-';
+}
+
+function judgeText(facts: BundleFacts): string {
+  const { judge } = facts;
+  const head = ['signal', 'steps', 'mse', ...judge.rivals.map((rival) => `skill over ${rival}`), 'coverage'];
+  const rows = judge.signals.map((row) => [
+    row.signal,
+    String(row.step),
+    shortNumber(row.mse),
+    ...row.skill.map((skill) => shortNumber(skill, 3)),
+    shortNumber(row.coverage, 3),
+  ]);
+  const right = head.map((_, i) => i).slice(1);
+  const verdict =
+    judge.override === null
+      ? judge.hasSkill
+        ? 'The judge found skill on time it had not seen (mse in signals standardised by the learning part):'
+        : 'The judge found NO skill on time it had not seen:'
+      : `The judge found no skill; sealed all the same: "${judge.override}"`;
+  return [verdict, textTable(head, rows, right), ...judge.verdicts.map((sentence) => `  ${sentence}`)].join('\n');
+}
+
+function provenanceText({ provenance: from }: BundleFacts): string {
+  return [
+    'Learned from',
+    `  history     ${from.from} to ${from.to}, ${from.ticks} ticks, digest ${from.history.slice(0, 16)}…`,
+    `  survey      ${from.survey.slice(0, 16)}…`,
+    `  refit of    ${from.previous ?? 'none, a first fit'}`,
+    `  seed ${from.seed}, options ${from.options}`,
+    `  versions    ${Object.entries(from.versions)
+      .map(([name, version]) => `${name} ${version}`)
+      .join(', ')}`,
+  ].join('\n');
+}
+
+function sizeText({ bytes }: BundleFacts): string {
+  const parts = Object.entries(bytes.parts).map(([part, size]) => `${part} ${bytesText(size)}`);
+  return `Document ${bytesText(bytes.document)}: ${parts.join(', ')}`;
+}
+
+function judgeRows(bundle: Bundle) {
+  const { judge } = bundle;
+  const signals = bundle.channels.filter((channel) => channel.role === 'signal');
+  const steps = judge.horizons.length;
+  const [mse, skill, coverage] = [judge.mse, judge.skill, judge.coverage].map((tensor: Tensor) => dequantise(tensor));
+  return signals.flatMap(({ name }, i) =>
+    judge.horizons.map((step, k) => ({
+      signal: name,
+      step,
+      mse: mse![i * steps + k]!,
+      skill: judge.rivals.map((_, j) => skill![(i * judge.rivals.length + j) * steps + k]!),
+      coverage: coverage![i * steps + k]!,
+    })),
+  );
+}
+
+/** Encoded bytes of each top-level field that is worth a word, the rest together. */
+function partSizes(bundle: Bundle): Record<string, number> {
+  const { linear } = bundle;
+  const named = {
+    bottleneck: linear.bottleneck,
+    'read-out': linear.readout,
+    'horizon shapes': linear.horizonBasis,
+    bounds: bundle.bounds,
+    seasonal: bundle.seasonal,
+    channels: bundle.channels,
+    judge: bundle.judge,
+    provenance: bundle.provenance,
+  };
+  return Object.fromEntries(Object.entries(named).map(([part, value]) => [part, encode(value).length]));
+}

@@ -1,0 +1,228 @@
+/**
+ * The readings of a site as the desk recovered them: what the filter saw, tick by tick, and beside it the same with late
+ * readings merged in. The result depends on which segments are kept, never on the order they came in.
+ */
+import { inflateRawSync } from 'node:zlib';
+import { type Bundle, latticeValue } from '@stillwell/protocol';
+import { TrainError } from '../errors.ts';
+import { Shelf } from './shelf.ts';
+import { openArchive, type Store, toBytes } from './store/open.ts';
+
+/** One signal or input of an archive. */
+export interface ArchivedChannel {
+  readonly name: string;
+  readonly role: 'signal' | 'input';
+  readonly unit: string;
+  /** With late readings merged; NaN missing. */
+  readonly values: Float64Array;
+  /** As the filter saw them when the tick closed; NaN missing. */
+  readonly original: Float64Array;
+  readonly lattice: { readonly step: number; readonly offset: number };
+}
+
+/**
+ * shapes  ticks (n), ascending, absolute since 1970; values and original (n) each
+ * units   as the bundle of the last segment says; channels in its order, then channels that only older bundles had
+ */
+export interface Archive {
+  readonly site: string;
+  readonly tickMs: number;
+  readonly ticks: Float64Array;
+  readonly channels: readonly ArchivedChannel[];
+  readonly segments: number;
+  /** Late readings that changed or filled a value. */
+  readonly corrections: number;
+  /** Hex digests of the bundles the segments were made with, in the order of their first ticks. */
+  readonly bundles: readonly string[];
+}
+
+/**
+ * Reads a site's archive out of a desk's data folder, also while a desk is writing to it.
+ *
+ * throws  TrainError 'archive' when there is no store, or nothing of the site is decoded in it
+ */
+export async function readArchive(folder: string, site: string): Promise<Archive> {
+  const store = await openArchive(folder);
+  try {
+    return await readSite(store, site);
+  } finally {
+    await store.close();
+  }
+}
+
+/** As readArchive, on a store that is open. */
+export async function readSite(store: Store, site: string): Promise<Archive> {
+  const spans = await store.db
+    .selectFrom('spans')
+    .innerJoin('segments', 'segments.id', 'spans.segment')
+    .select(['spans.bundle', 'spans.first_tick', 'spans.ticks', 'spans.channels', 'spans.lattice'])
+    .where('spans.site', '=', site)
+    .orderBy('spans.first_tick')
+    .orderBy('segments.gateway')
+    .orderBy('segments.stream')
+    .orderBy('segments.number')
+    .execute();
+  if (spans.length === 0) throw await nothingOf(store, site);
+  const late = await store.db
+    .selectFrom('corrections')
+    .innerJoin('segments', 'segments.id', 'corrections.segment')
+    .select(['corrections.bundle', 'corrections.tick', 'corrections.channel', 'corrections.lattice'])
+    .where('corrections.site', '=', site)
+    .orderBy('segments.gateway')
+    .orderBy('segments.stream')
+    .orderBy('segments.number')
+    .orderBy('corrections.entry')
+    .execute();
+  const bundles = await bundlesOf(store, spans);
+  const last = bundles.get(spans[spans.length - 1]!.bundle)!;
+  const usable = <T extends { bundle: string }>(row: T): boolean => bundles.get(row.bundle)?.tickMs === last.tickMs;
+  const grid = new Grid(last, bundles);
+  const kept = spans.filter(usable);
+  for (const span of kept) grid.cover(span.first_tick, span.ticks);
+  const lateKept = late.filter(usable);
+  for (const one of lateKept) grid.cover(one.tick, 1);
+  grid.open();
+  for (const span of kept) grid.lay(span.bundle, span.first_tick, span.channels, unpackLattice(toBytes(span.lattice)));
+  grid.keepOriginal();
+  let corrections = 0;
+  for (const one of lateKept) if (grid.correct(one.bundle, one.tick, one.channel, one.lattice)) corrections++;
+  const made = grid.finish();
+  return { site, tickMs: last.tickMs, ...made, segments: kept.length, corrections, bundles: [...bundles.keys()] };
+}
+
+async function nothingOf(store: Store, site: string): Promise<TrainError> {
+  const rows = await store.db.selectFrom('segments').select('site').distinct().orderBy('site').execute();
+  const known = rows.map((row) => row.site).join(', ');
+  return new TrainError(
+    'archive',
+    `${store.folder}: nothing decoded of site "${site}"; ` +
+      (known === '' ? 'the archive is empty' : `segments are kept of: ${known}; see \`stillwell desk status\``),
+  );
+}
+
+async function bundlesOf(store: Store, spans: readonly { bundle: string }[]): Promise<Map<string, Bundle>> {
+  const shelf = new Shelf(store, null);
+  const bundles = new Map<string, Bundle>();
+  for (const { bundle } of spans) {
+    if (bundles.has(bundle)) continue;
+    const shelved = await shelf.find(bundle);
+    if (shelved) bundles.set(bundle, shelved.bundle);
+  }
+  return bundles;
+}
+
+/** Ticks first <= n < end, the first of them in row `at`. */
+interface Run {
+  readonly first: number;
+  end: number;
+  readonly at: number;
+}
+
+/** Columns by channel name over the union of all covered ticks. */
+class Grid {
+  readonly #bundles: ReadonlyMap<string, Bundle>;
+  readonly #channels: { name: string; role: 'signal' | 'input'; unit: string; lattice: ArchivedChannel['lattice'] }[];
+  readonly #columnOf = new Map<string, number>();
+  #runs: Run[] = [];
+  #ticks = new Float64Array(0);
+  #values: Float64Array[] = [];
+  #original: Float64Array[] = [];
+
+  constructor(last: Bundle, bundles: ReadonlyMap<string, Bundle>) {
+    this.#bundles = bundles;
+    this.#channels = [];
+    for (const bundle of [last, ...bundles.values()]) {
+      for (const { name, role, unit, lattice } of bundle.channels) {
+        if (this.#columnOf.has(name)) continue;
+        this.#columnOf.set(name, this.#channels.length);
+        this.#channels.push({ name, role, unit, lattice });
+      }
+    }
+  }
+
+  cover(first: number, ticks: number): void {
+    if (ticks > 0) this.#runs.push({ first, end: first + ticks, at: 0 });
+  }
+
+  /** Joins what is covered into runs without overlap and makes room for it. */
+  open(): void {
+    const runs: Run[] = [];
+    let length = 0;
+    for (const run of this.#runs.sort((a, b) => a.first - b.first)) {
+      const before = runs[runs.length - 1];
+      if (before && run.first <= before.end) {
+        length += Math.max(0, run.end - before.end);
+        before.end = Math.max(before.end, run.end);
+      } else {
+        runs.push({ ...run, at: length });
+        length += run.end - run.first;
+      }
+    }
+    this.#runs = runs;
+    this.#ticks = new Float64Array(length);
+    for (const { first, end, at } of runs)
+      for (let tick = first; tick < end; tick++) this.#ticks[at + tick - first] = tick;
+    this.#values = this.#channels.map(() => new Float64Array(length).fill(Number.NaN));
+  }
+
+  lay(digest: string, first: number, count: number, lattice: Float64Array): void {
+    const { channels } = this.#bundles.get(digest)!;
+    const ticks = lattice.length / count;
+    const at = ticks > 0 ? this.#place(first) : 0;
+    for (let c = 0; c < count; c++) {
+      const { name, lattice: steps } = channels[c]!;
+      const column = this.#values[this.#columnOf.get(name)!]!;
+      for (let i = 0; i < ticks; i++) {
+        const index = lattice[i * count + c]!;
+        // Where two streams cover a tick, a reading beats a gap.
+        if (!Number.isNaN(index)) column[at + i] = latticeValue(index, steps.step, steps.offset);
+      }
+    }
+  }
+
+  keepOriginal(): void {
+    this.#original = this.#values.map((column) => column.slice());
+  }
+
+  correct(digest: string, tick: number, channel: number, index: number): boolean {
+    const { name, lattice } = this.#bundles.get(digest)!.channels[channel]!;
+    const column = this.#values[this.#columnOf.get(name)!]!;
+    const at = this.#place(tick);
+    const value = latticeValue(index, lattice.step, lattice.offset);
+    if (column[at] === value) return false;
+    column[at] = value;
+    return true;
+  }
+
+  finish(): { ticks: Float64Array; channels: ArchivedChannel[] } {
+    const channels = this.#channels.map((channel, i) => ({
+      ...channel,
+      values: this.#values[i]!,
+      original: this.#original[i]!,
+    }));
+    return { ticks: this.#ticks, channels };
+  }
+
+  #place(tick: number): number {
+    let low = 0;
+    let high = this.#runs.length - 1;
+    while (low < high) {
+      const middle = (low + high + 1) >> 1;
+      if (this.#runs[middle]!.first <= tick) low = middle;
+      else high = middle - 1;
+    }
+    const run = this.#runs[low]!;
+    return run.at + tick - run.first;
+  }
+}
+
+/** Most bytes one span can unfold to: the most values of a segment, 8 bytes each. */
+const MAX_SPAN_BYTES = 8 * (1 << 21);
+
+function unpackLattice(deflated: Uint8Array): Float64Array {
+  const bytes = inflateRawSync(deflated, { maxOutputLength: MAX_SPAN_BYTES });
+  const view = new DataView(bytes.buffer, bytes.byteOffset, bytes.byteLength);
+  const lattice = new Float64Array(bytes.length / 8);
+  for (let i = 0; i < lattice.length; i++) lattice[i] = view.getFloat64(i * 8, true);
+  return lattice;
+}

@@ -1,0 +1,179 @@
+/**
+ * The desk at work: segments come in, are committed in batches, receipted, decoded. Joined to MQTT by two functions the
+ * caller gives, so that the same code runs against a broker and inside a test. An arrival that cannot be kept just now
+ * (queue full, disk full) is dropped without a receipt: the gateway still has it and sends it again.
+ */
+import { MAX_RECEIPT_SEGMENTS, parseTopic, receiptMessage, topicsOf } from '@stillwell/protocol';
+import { Chain, type ChainEvent } from './chain.ts';
+import { type Arrival, type Outcome, type SegmentName, takeIn } from './intake.ts';
+import type { Shelf } from './shelf.ts';
+import type { Store } from './store/open.ts';
+
+/** What a desk tells as it goes: one JSON line each under `--json`. */
+export type DeskEvent =
+  | (Outcome & { readonly event: 'segment' })
+  | (ChainEvent & { readonly event: 'chain' })
+  | { readonly event: 'receipt'; readonly site: string; readonly gateway: string; readonly segments: number }
+  | { readonly event: 'receipt-lost'; readonly site: string; readonly message: string }
+  | { readonly event: 'bundle'; readonly digest: string }
+  | { readonly event: 'bundle-refused'; readonly file: string; readonly message: string }
+  | { readonly event: 'not-kept'; readonly dropped: number; readonly message: string }
+  | { readonly event: 'failed'; readonly message: string };
+
+export interface CollectorOptions {
+  readonly store: Store;
+  readonly shelf: Shelf;
+  readonly root: string;
+  /** Publishes a receipt, QoS 1; a rejection means "unknown" and is only told. */
+  readonly publish: (topic: string, payload: Uint8Array) => Promise<void>;
+  readonly onEvent: (event: DeskEvent) => void;
+  readonly now?: () => number;
+}
+
+/** Segments committed in one transaction at most. */
+const BATCH = 64;
+/** Bytes waiting in memory at most; beyond, arrivals are left to the gateways. */
+const MAX_QUEUE_BYTES = 64 * 1024 * 1024;
+
+/** Takes messages in one after the other, whatever their rate. */
+export class Collector {
+  readonly #options: CollectorOptions;
+  readonly #chain: Chain;
+  readonly #now: () => number;
+  #queue: Arrival[] = [];
+  #queueBytes = 0;
+  #dropped = 0;
+  /** The pump at work, or the last one done; never rejects. */
+  #pump: Promise<void> = Promise.resolve();
+  #isPumping = false;
+
+  constructor(options: CollectorOptions) {
+    this.#options = options;
+    this.#chain = new Chain(options.store, options.shelf);
+    this.#now = options.now ?? Date.now;
+  }
+
+  /** Arrivals not committed yet. */
+  get waiting(): number {
+    return this.#queue.length;
+  }
+
+  /** Takes one message; false where its topic carries no segments. Returns at once and never throws. */
+  offer(topic: string, payload: Uint8Array): boolean {
+    const parsed = parseTopic(this.#options.root, topic);
+    if (parsed?.kind !== 'segments') return false;
+    if (this.#queueBytes + payload.length > MAX_QUEUE_BYTES) {
+      this.#dropped++;
+      return true;
+    }
+    this.#queue.push({ site: parsed.site, bytes: Uint8Array.from(payload), atMs: this.#now() });
+    this.#queueBytes += payload.length;
+    this.#start();
+    return true;
+  }
+
+  /** Looks through the bundle folder and decodes what waited for what it finds; at start also all else that waits. */
+  refresh(isStart = false): Promise<void> {
+    const look = async (): Promise<void> => {
+      const { added, refused } = await this.#options.shelf.refresh();
+      for (const digest of added) this.#tell({ event: 'bundle', digest });
+      for (const one of refused) this.#tell({ event: 'bundle-refused', ...one });
+      if (isStart) this.#tellChain(await this.#chain.followAll());
+      else if (added.length > 0) this.#tellChain(await this.#chain.followAll(added));
+    };
+    this.#pump = this.#pump.then(look).catch((error: Error) => this.#failed(error));
+    return this.#pump;
+  }
+
+  /** Resolves when everything taken so far is committed, receipted and, as far as possible, decoded. */
+  async settle(): Promise<void> {
+    do await this.#pump;
+    while (this.#isPumping || this.#queue.length > 0);
+  }
+
+  #start(): void {
+    if (this.#isPumping) return;
+    this.#isPumping = true;
+    this.#pump = this.#pump.then(async () => {
+      while (this.#queue.length > 0) await this.#takeBatch();
+      this.#isPumping = false;
+    });
+  }
+
+  async #takeBatch(): Promise<void> {
+    const batch = this.#queue.splice(0, BATCH);
+    for (const { bytes } of batch) this.#queueBytes -= bytes.length;
+    let outcomes: Outcome[] = [];
+    try {
+      outcomes = await takeIn(this.#options.store, batch);
+    } catch (error) {
+      this.#tell({ event: 'not-kept', dropped: batch.length, message: (error as Error).message });
+    }
+    for (const outcome of outcomes) this.#tell({ event: 'segment', ...outcome });
+    const receipts = this.#receipt(outcomes);
+    await this.#decode(outcomes);
+    await receipts;
+    if (this.#dropped > 0) {
+      this.#tell({
+        event: 'not-kept',
+        dropped: this.#dropped,
+        message: 'too much at once; the gateways send it again',
+      });
+    }
+    this.#dropped = 0;
+  }
+
+  /** One message for each gateway and stream; only what is committed is named. */
+  async #receipt(outcomes: readonly Outcome[]): Promise<void> {
+    const groups = new Map<string, SegmentName[]>();
+    for (const outcome of outcomes) {
+      if (outcome.kind === 'refused') continue;
+      const { site, gateway, stream } = outcome.name;
+      const key = JSON.stringify([site, gateway, stream]);
+      groups.set(key, [...(groups.get(key) ?? []), outcome.name]);
+    }
+    const sent = [...groups.values()].flatMap((names) => {
+      const messages: Promise<void>[] = [];
+      for (let at = 0; at < names.length; at += MAX_RECEIPT_SEGMENTS) {
+        messages.push(this.#send(names.slice(at, at + MAX_RECEIPT_SEGMENTS)));
+      }
+      return messages;
+    });
+    await Promise.all(sent);
+  }
+
+  async #send(names: readonly SegmentName[]): Promise<void> {
+    const { site, gateway, stream } = names[0]!;
+    const segments = names.map(({ number, hash }) => ({ number, hash }));
+    const payload = receiptMessage({ site, gateway, stream: Uint8Array.from(Buffer.from(stream, 'hex')), segments });
+    try {
+      await this.#options.publish(topicsOf(this.#options.root, site).receipts, payload);
+      this.#tell({ event: 'receipt', site, gateway, segments: segments.length });
+    } catch (error) {
+      this.#tell({ event: 'receipt-lost', site, message: (error as Error).message });
+    }
+  }
+
+  async #decode(outcomes: readonly Outcome[]): Promise<void> {
+    try {
+      for (const outcome of outcomes) {
+        if (outcome.kind === 'stored') this.#tellChain(await this.#chain.follow(outcome.name));
+      }
+    } catch (error) {
+      this.#failed(error as Error);
+    }
+  }
+
+  #tellChain(events: readonly ChainEvent[]): void {
+    for (const event of events) this.#tell({ event: 'chain', ...event });
+  }
+
+  /** What is committed stays so; the next start tries again. */
+  #failed(error: Error): void {
+    this.#tell({ event: 'failed', message: error.message });
+  }
+
+  #tell(event: DeskEvent): void {
+    this.#options.onEvent(event);
+  }
+}

@@ -1,0 +1,28 @@
+/** Values of command-line options, checked where they are read. */
+import { InvalidArgumentError } from 'commander';
+
+/** A parser for a whole number from `least` to `most`. */
+export function wholeNumber(least: number, most: number = Number.MAX_SAFE_INTEGER): (text: string) => number {
+  return (text) => {
+    const value = /^\d+$/.test(text) ? Number(text) : Number.NaN;
+    if (!Number.isSafeInteger(value) || value < least || value > most) {
+      const span = most === Number.MAX_SAFE_INTEGER ? `${least} or more` : `${least} to ${most}`;
+      throw new InvalidArgumentError(`Expected a whole number, ${span}.`);
+    }
+    return value;
+  };
+}
+
+/** A parser for a number of seconds above zero. */
+export function seconds(text: string): number {
+  const value = Number(text);
+  if (text.trim() === '' || !Number.isFinite(value) || value <= 0) {
+    throw new InvalidArgumentError('Expected a number of seconds above 0.');
+  }
+  return value;
+}
+
+/** Gathers a repeated option. */
+export function several(text: string, before: readonly string[] | undefined): string[] {
+  return [...(before ?? []), text];
+}
