@@ -55,6 +55,11 @@ export class Gathering {
     block.values[channel]?.push(value);
   }
 
+  /** True where some file holds the channel. */
+  holds(channel: number): boolean {
+    return this.#blocks.some((block) => block.values[channel] != null);
+  }
+
   /** All readings by channel; channels found in the same blocks share one array of times. */
   channels(names: readonly string[]): ChannelReadings[] {
     const shared = new Map<string, Float64Array>();

@@ -21,7 +21,7 @@ const ALL: Plausible = { low: Number.NEGATIVE_INFINITY, high: Number.POSITIVE_IN
 /** Bounds for a signal's readings; NaN among them is passed over. */
 export function plausibleSpan(signal: Signal, values: Float64Array): Plausible {
   if (signal.range !== null) return { low: signal.range[0], high: signal.range[1], isDeclared: true };
-  const sorted = values.filter((value) => value === value).sort();
+  const sorted = values.filter((value) => !Number.isNaN(value)).sort();
   if (sorted.length < FEWEST) return ALL;
   const low = sorted[Math.floor(USUAL[0] * (sorted.length - 1))] as number;
   const high = sorted[Math.ceil(USUAL[1] * (sorted.length - 1))] as number;

@@ -4,15 +4,17 @@
  * file and line.
  */
 import type { Site } from '@stillwell/protocol';
+import { nearestName } from '@stillwell/protocol';
 import { TrainError } from '../errors.ts';
 import type { Progress } from '../progress.ts';
-import { findSeparator } from './csv-header.ts';
+import { channelsOf } from './channels.ts';
 import type { FileReader } from './file-reader.ts';
+import { readerFor } from './format.ts';
 import { Gathering } from './gathering.ts';
 import type { FileRead, History } from './history.ts';
 import { type InputFile, inspectFile, readBlocks } from './input-file.ts';
+import { refusal, shown } from './refusal.ts';
 import { TimeReader } from './times.ts';
-import { WideCsvReader } from './wide-csv.ts';
 
 export interface ReadOptions {
   /** Zone of times that carry none, before the site's own; null: the site's. */
@@ -22,17 +24,6 @@ export interface ReadOptions {
   /** First time not kept, ms; all when absent. */
   readonly untilMs?: number;
   readonly progress?: Progress;
-}
-
-/** Channels of a site in order: signals, then inputs. */
-export function channelsOf(site: Site): Site['signals'] {
-  return [...site.signals, ...site.inputs];
-}
-
-function readerFor(file: InputFile, head: Buffer, site: Site, gathering: Gathering, times: TimeReader): FileReader {
-  const text = head.toString('utf8', 0, Math.min(head.length, 1 << 16));
-  const wanted = channelsOf(site).map((channel) => channel.column);
-  return new WideCsvReader(file.path, findSeparator(file.path, text), wanted, gathering, times);
 }
 
 async function readOne(
@@ -61,9 +52,39 @@ async function readOne(
         timeKind: times.kind,
       };
     }
-    reader ??= readerFor(file, next.value, site, gathering, times);
+    reader ??= readerFor(file.path, next.value, site, gathering, times);
     reader.push(next.value);
   }
+}
+
+/** Refuses a signal that no file holds, with the likeliest column it was meant to be. */
+function refuseUnseen(site: Site, gathering: Gathering, files: readonly FileRead[]): void {
+  const unseen = channelsOf(site).find((_, c) => !gathering.holds(c));
+  if (unseen === undefined) return;
+  const others = [...new Set(files.flatMap(({ columnsIgnored }) => columnsIgnored))];
+  const isCapture = files.every(({ format }) => format === 'MQTT capture');
+  const near = nearestName(unseen.column, others);
+  const place = { file: files.map(({ file }) => file).join(', ') };
+  if (isCapture)
+    throw refusal(
+      place,
+      `messages for ${shown(unseen.name)} on topics that match ${shown(unseen.topic ?? '')}`,
+      others.length > 0 ? `messages on ${listed(others)}` : 'none that could be read',
+      'mend "topic" or "payload" of that signal in the site file',
+    );
+  throw refusal(
+    place,
+    `a column or signal ${shown(unseen.column)}, as the site file says`,
+    others.length > 0 ? `beside the known ones ${listed(others)}` : 'none beside the known ones',
+    near === null
+      ? `set "column" of ${shown(unseen.name)} in the site file`
+      : `perhaps ${shown(near)} is meant: set "column" of ${shown(unseen.name)} to it`,
+  );
+}
+
+function listed(names: readonly string[]): string {
+  const few = names.slice(0, 12).map(shown).join(', ');
+  return names.length > 12 ? `${few} and ${names.length - 12} more` : few;
 }
 
 /**
@@ -101,6 +122,7 @@ export async function readHistory(files: readonly string[], site: Site, options:
   } finally {
     options.progress?.end();
   }
+  refuseUnseen(site, gathering, read);
   return {
     channels: gathering.channels(channels.map((channel) => channel.name)),
     signalCount: site.signals.length,

@@ -7,8 +7,8 @@
  * Values with more digits than a sensor has (computed ones) get a step well below their own movement, and the survey says so.
  */
 import { latticeIndex, latticeValue, type Signal, type Site } from '@stillwell/protocol';
+import { channelsOf } from './channels.ts';
 import type { History } from './history.ts';
-import { channelsOf } from './read.ts';
 
 export interface Lattice {
   readonly step: number;
@@ -36,7 +36,7 @@ function decimalsOf(values: Float64Array, tolerance: number, most: number): numb
   let power = 1;
   for (let i = 0; i < values.length; i++) {
     const value = values[i] as number;
-    if (value !== value) continue;
+    if (Number.isNaN(value)) continue;
     for (;;) {
       const scaled = Math.abs(value) * power;
       const slack = scaled * tolerance;
@@ -51,7 +51,7 @@ function decimalsOf(values: Float64Array, tolerance: number, most: number): numb
 /** True where every value is a 32-bit float, printed with enough digits. */
 function isSingle(values: Float64Array): boolean {
   return values.every(
-    (value) => value !== value || Math.abs(value - Math.fround(value)) <= Math.abs(value) * DOUBLE_TOLERANCE,
+    (value) => Number.isNaN(value) || Math.abs(value - Math.fround(value)) <= Math.abs(value) * DOUBLE_TOLERANCE,
   );
 }
 
@@ -79,9 +79,9 @@ function multiplesOf(values: Float64Array, decimals: number): Lattice | null {
   let first = Number.NaN;
   let divisor = 0;
   for (const value of values) {
-    if (value !== value) continue;
+    if (Number.isNaN(value)) continue;
     const k = Math.round(value * power);
-    if (first !== first) first = k;
+    if (Number.isNaN(first)) first = k;
     divisor = greatestDivisor(Math.abs(k - first), divisor);
     if (divisor === 1) return null;
   }
@@ -89,7 +89,7 @@ function multiplesOf(values: Float64Array, decimals: number): Lattice | null {
   const lattice = { step: divisor / power, offset: (((first % divisor) + divisor) % divisor) / power };
   const seen = new Set<number>();
   for (const value of values) {
-    if (value !== value) continue;
+    if (Number.isNaN(value)) continue;
     const k = latticeIndex(value, lattice.step, lattice.offset);
     if (latticeValue(k, lattice.step, lattice.offset) !== Math.round(value * power) / power) return null;
     if (seen.size < DISTINCT_FOR_MULTIPLES) seen.add(k);
@@ -99,7 +99,7 @@ function multiplesOf(values: Float64Array, decimals: number): Lattice | null {
 
 /** A power of ten well below the values' own movement, for values without a sensor's lattice. */
 function computedStep(values: Float64Array): number {
-  const sorted = values.filter((value) => value === value).sort();
+  const sorted = values.filter((value) => !Number.isNaN(value)).sort();
   const at = (share: number): number => sorted[Math.floor(share * (sorted.length - 1))] as number;
   const spread = at(0.99) - at(0.01) || at(1) - at(0) || Math.abs(at(0.5)) || 1;
   const moves: number[] = [];
@@ -117,7 +117,7 @@ function computedStep(values: Float64Array): number {
  * cost  O(n) and one pass in most cases
  */
 export function findLattice(values: Float64Array): FoundLattice {
-  if (values.every((value) => value !== value)) return { step: 1, offset: 0, how: 'no readings' };
+  if (values.every((value) => Number.isNaN(value))) return { step: 1, offset: 0, how: 'no readings' };
   let how: FoundLattice['how'] = 'decimals';
   let decimals = decimalsOf(values, DOUBLE_TOLERANCE, MAX_DECIMALS);
   if (decimals < 0) {

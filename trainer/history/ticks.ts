@@ -6,9 +6,9 @@ import { createHash } from 'node:crypto';
 import { latticeIndex, latticeValue, type Signal, type Site } from '@stillwell/protocol';
 import { TrainError } from '../errors.ts';
 import { TickValue } from './aggregate.ts';
+import { channelsOf } from './channels.ts';
 import type { ChannelReadings, History } from './history.ts';
 import { plausibleSpan } from './plausible.ts';
-import { channelsOf } from './read.ts';
 import { findLattices, type Lattice } from './resolution.ts';
 import type { Series } from './series.ts';
 
@@ -57,7 +57,7 @@ function layChannel(
   let open = -1;
   const close = (): void => {
     const value = tick.close();
-    if (value === value)
+    if (!Number.isNaN(value))
       laid[open] = latticeValue(latticeIndex(value, lattice.step, lattice.offset), lattice.step, lattice.offset);
   };
   for (let n = 0; n < channel.times.length; n++) {

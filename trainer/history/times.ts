@@ -8,7 +8,6 @@ import { textOfBytes } from './numbers.ts';
 import { shown } from './refusal.ts';
 import { type Resolved, ZoneRules } from './zone.ts';
 
-const DAY_MS = 86_400_000;
 /** Counts below are no times since 1970 in seconds (1973) but mere row numbers. */
 const FIRST_EPOCH_S = 1e8;
 /** Counts from here on are milliseconds: as seconds they would lie past the year 5138. */

@@ -4,10 +4,9 @@
 import { readHeader, separatorName, timeColumn } from './csv-header.ts';
 import { type FileAccount, type FileReader, numberRefusal, tally, timeRefusal } from './file-reader.ts';
 import type { Block, Gathering } from './gathering.ts';
-import { nearestName } from './nearest.ts';
 import { numberOfBytes, numberOfText } from './numbers.ts';
 import { RecordScanner, type RecordView } from './records.ts';
-import { refusal, shown } from './refusal.ts';
+import { refusal } from './refusal.ts';
 import { shownTime, type TimeReader } from './times.ts';
 
 export class WideCsvReader implements FileReader {
@@ -20,7 +19,7 @@ export class WideCsvReader implements FileReader {
   readonly #missingMarks: Record<string, number> = {};
   #names: readonly string[] | null = null;
   #time = 0;
-  /** Column of each kept channel, and the channel it feeds. */
+  /** Column of each channel this file holds; other files may hold the others. */
   #columns = new Int32Array(0);
   #channels: readonly number[] = [];
   #block: Block | null = null;
@@ -63,23 +62,9 @@ export class WideCsvReader implements FileReader {
   #begin(record: RecordView): void {
     const names = readHeader(this.#path, record);
     this.#time = timeColumn(names);
-    const found = this.#wanted.map((column) => names.indexOf(column));
-    const missing = found.indexOf(-1);
-    if (missing >= 0) {
-      const column = this.#wanted[missing] as string;
-      const near = nearestName(column, names);
-      throw refusal(
-        { file: this.#path, line: record.line },
-        `a column ${shown(column)}, which the site file names`,
-        `columns ${names.map(shown).join(', ')}`,
-        near === null
-          ? 'set "column" of that signal to one of them'
-          : `perhaps ${shown(near)} is meant: set "column" of that signal to it`,
-      );
-    }
     this.#names = names;
-    this.#columns = Int32Array.from(found);
-    this.#channels = found.map((_, channel) => channel);
+    this.#channels = this.#wanted.flatMap((column, channel) => (names.includes(column) ? [channel] : []));
+    this.#columns = Int32Array.from(this.#channels, (channel) => names.indexOf(this.#wanted[channel] as string));
     this.#block = this.#gathering.wideBlock(this.#channels);
   }
 
@@ -106,6 +91,7 @@ export class WideCsvReader implements FileReader {
     const block = this.#block as Block;
     block.times.push(timeMs);
     const columns = this.#columns;
+    const channels = this.#channels;
     for (let c = 0; c < columns.length; c++) {
       const column = columns[c] as number;
       const from = record.starts[column] as number;
@@ -114,8 +100,8 @@ export class WideCsvReader implements FileReader {
         record.quoted[column] === 2 ? numberOfText(record.text(column)) : numberOfBytes(record.bytes, from, to);
       if (value === Number.POSITIVE_INFINITY || value === Number.NEGATIVE_INFINITY)
         throw numberRefusal(this.#path, record.line, names[column] as string, record.text(column));
-      if (value !== value) tally(this.#missingMarks, to > from ? record.text(column) : '');
-      (block.values[c] as { push(v: number): void }).push(value);
+      if (Number.isNaN(value)) tally(this.#missingMarks, to > from ? record.text(column) : '');
+      (block.values[channels[c] as number] as { push(v: number): void }).push(value);
     }
   }
 

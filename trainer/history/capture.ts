@@ -1,0 +1,116 @@
+/**
+ * Captured MQTT messages: {"time", "topic", "payload"[, "encoding": "base64"]} a line, `time` of arrival. Each is read as
+ * the gateway would read it, by the site file's topics and payload mapping, so that what is learned is what will be seen.
+ * A payload the mapping cannot read is counted, not refused: on a live broker such things come.
+ */
+import { matchesFilter, ProtocolError, readPayload, type Signal } from '@stillwell/protocol';
+import { type FileAccount, type FileReader, tally } from './file-reader.ts';
+import type { Gathering } from './gathering.ts';
+import { readMemberTime } from './long-ndjson.ts';
+import { LineObjects, shownMember } from './ndjson.ts';
+import { refusal } from './refusal.ts';
+import type { TimeReader } from './times.ts';
+
+/** Payload bytes of a captured line. */
+export function payloadOf(path: string, line: Readonly<Record<string, unknown>>, number: number): Uint8Array {
+  const { payload, encoding } = line;
+  if (encoding !== undefined && encoding !== 'base64')
+    throw refusal(
+      { file: path, line: number, field: 'encoding' },
+      '"base64" or nothing',
+      shownMember(encoding),
+      'capture payloads as text or base64',
+    );
+  if (payload === undefined)
+    throw refusal(
+      { file: path, line: number, field: 'payload' },
+      'the payload as text',
+      'nothing',
+      'mend or drop this line',
+    );
+  if (typeof payload !== 'string') return Buffer.from(JSON.stringify(payload));
+  if (encoding !== 'base64') return Buffer.from(payload);
+  const bytes = Buffer.from(payload, 'base64');
+  if (bytes.toString('base64').replace(/=+$/, '') !== payload.replace(/=+$/, ''))
+    throw refusal(
+      { file: path, line: number, field: 'payload' },
+      'base64 (RFC 4648)',
+      shownMember(payload),
+      'mend or drop this line',
+    );
+  return bytes;
+}
+
+/** Topic of a captured line. */
+export function topicOf(path: string, line: Readonly<Record<string, unknown>>, number: number): string {
+  const { topic } = line;
+  if (typeof topic === 'string' && topic !== '') return topic;
+  throw refusal({ file: path, line: number, field: 'topic' }, 'a topic', shownMember(topic), 'mend or drop this line');
+}
+
+export class CaptureReader implements FileReader {
+  readonly #path: string;
+  readonly #signals: readonly Signal[];
+  readonly #gathering: Gathering;
+  readonly #times: TimeReader;
+  readonly #lines: LineObjects;
+  readonly #channelsOf = new Map<string, readonly number[]>();
+  readonly #passedOver: Record<string, number> = {};
+  readonly #ignored = new Set<string>();
+  #arrivedMs = Number.NEGATIVE_INFINITY;
+  rows = 0;
+
+  /** signals  by channel */
+  constructor(path: string, signals: readonly Signal[], gathering: Gathering, times: TimeReader) {
+    this.#path = path;
+    this.#signals = signals;
+    this.#gathering = gathering;
+    this.#times = times;
+    this.#lines = new LineObjects(path, (line, number) => this.#message(line, number));
+  }
+
+  push(block: Buffer): void {
+    this.#lines.push(block);
+  }
+
+  end(): FileAccount {
+    return {
+      format: 'MQTT capture',
+      separator: null,
+      rows: this.rows,
+      columnsIgnored: [...this.#ignored].sort(),
+      missingMarks: {},
+      passedOver: this.#passedOver,
+    };
+  }
+
+  #channels(topic: string): readonly number[] {
+    let channels = this.#channelsOf.get(topic);
+    if (!channels) {
+      channels = this.#signals.flatMap((signal, c) =>
+        signal.topic !== null && matchesFilter(signal.topic, topic) ? [c] : [],
+      );
+      this.#channelsOf.set(topic, channels);
+      if (channels.length === 0) this.#ignored.add(topic);
+    }
+    return channels;
+  }
+
+  #message(line: Readonly<Record<string, unknown>>, number: number): void {
+    this.rows++;
+    const topic = topicOf(this.#path, line, number);
+    const arrivedMs = readMemberTime(this.#path, number, line.time, this.#times, this.#arrivedMs);
+    this.#arrivedMs = arrivedMs;
+    const payload = payloadOf(this.#path, line, number);
+    for (const channel of this.#channels(topic)) {
+      const signal = this.#signals[channel] as Signal;
+      try {
+        const { value, timeMs } = readPayload(signal.payload, payload);
+        this.#gathering.add(channel, timeMs ?? arrivedMs, value);
+      } catch (cause) {
+        if (!(cause instanceof ProtocolError)) throw cause;
+        tally(this.#passedOver, `payload of ${signal.name} not readable`);
+      }
+    }
+  }
+}
