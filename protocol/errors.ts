@@ -2,8 +2,10 @@
 export type ProtocolErrorCode =
   | 'size'
   | 'envelope'
+  | 'key'
   | 'signature'
   | 'digest'
+  | 'encode'
   | 'scan'
   | 'decode'
   | 'schema'

@@ -1,0 +1,128 @@
+/**
+ * Whether the fields of a bundle agree with each other: shapes of every tensor, order of channels and lags, moduli below
+ * one. A bundle that passes computes without reading past an array and without growing for ever.
+ */
+import type { Bundle, BundleChannel } from './bundle.ts';
+import { ProtocolError } from './errors.ts';
+import { bundleSchemaHash } from './schema-hash.ts';
+import { checkTensor, dequantise, type TensorType } from './tensor.ts';
+
+const QUANTISED: readonly TensorType[] = ['i8', 'i16'];
+const FLOATS: readonly TensorType[] = ['f32', 'f64'];
+
+const refuse = (path: string, what: string): never => {
+  throw new ProtocolError('schema', `bundle document: ${path}: ${what}`, { details: { path } });
+};
+
+const checkLimits = (channel: BundleChannel, path: string): void => {
+  const { lowLow, low, high, highHigh } = channel.limits;
+  const ladder = [lowLow, low, high, highHigh].filter((value) => value !== null);
+  const isRising = ladder.every((value, i) => i === 0 || value > ladder[i - 1]!);
+  if (!isRising)
+    refuse(`${path}.limits`, `expected levels that rise from lowLow to highHigh, got ${ladder.join(', ')}`);
+};
+
+const checkChannels = (channels: readonly BundleChannel[]): number => {
+  const names = new Set<string>();
+  let signals = 0;
+  for (const [i, channel] of channels.entries()) {
+    const path = `channels[${i}]`;
+    if (names.has(channel.name)) refuse(`${path}.name`, `expected a name of its own, got "${channel.name}" again`);
+    names.add(channel.name);
+    if (channel.role === 'signal') {
+      if (signals !== i) refuse(`${path}.role`, 'expected signals before inputs, got a signal after an input');
+      signals++;
+    }
+    const [low, high] = channel.clip;
+    if (!(low < high)) refuse(`${path}.clip`, `expected low below high, got [${low}, ${high}]`);
+    checkLimits(channel, path);
+  }
+  if (signals === 0) refuse('channels', 'expected at least one signal, got inputs only');
+  return signals;
+};
+
+const checkLinear = (bundle: Bundle, signals: number): void => {
+  const { decays, resonators, lags, featureExponents, bottleneck, readout, horizonBasis } = bundle.linear;
+  for (const [i, [re, im]] of resonators.entries()) {
+    const modulus = Math.sqrt(re * re + im * im);
+    if (!(modulus < 1)) refuse(`linear.resonators[${i}]`, `expected a modulus below 1, got ${modulus}`);
+  }
+  for (const [i, lag] of lags.entries()) {
+    if (i > 0 && lag <= lags[i - 1]!) refuse(`linear.lags[${i}]`, `expected a lag above ${lags[i - 1]}, got ${lag}`);
+  }
+  const features = decays.length + 2 * resonators.length + lags.length;
+  if (features === 0) refuse('linear', 'expected at least one feature a channel, got none');
+  const order = bottleneck.rows;
+  const basis = horizonBasis.cols;
+  if (order === 0) refuse('linear.bottleneck', 'expected at least one row, got none');
+  if (basis === 0) refuse('linear.horizonBasis', 'expected at least one column, got none');
+  checkTensor(featureExponents, bundle.channels.length, features, ['i8'], 'linear.featureExponents');
+  checkUnitScales(featureExponents.scales);
+  checkTensor(bottleneck, order, bundle.channels.length * features, QUANTISED, 'linear.bottleneck');
+  checkTensor(readout, signals * basis, order, QUANTISED, 'linear.readout');
+  checkTensor(horizonBasis, bundle.horizon, basis, QUANTISED, 'linear.horizonBasis');
+};
+
+/** Exponents are integers as they stand: a scale would change them. */
+const checkUnitScales = (scales: Uint8Array): void => {
+  const view = new DataView(scales.buffer, scales.byteOffset, scales.byteLength);
+  for (let row = 0; row < scales.length / 4; row++) {
+    const scale = view.getFloat32(row * 4, true);
+    if (scale !== 1) refuse('linear.featureExponents', `row ${row}: expected scale 1, got ${scale}`);
+  }
+};
+
+const checkSeasonal = (bundle: Bundle, signals: number): void => {
+  const { periodTicks, table } = bundle.seasonal;
+  const most = Math.max(1, periodTicks);
+  if (table.cols < 1 || table.cols > most) {
+    refuse('seasonal.table', `expected 1 to ${most} columns for a period of ${periodTicks} ticks, got ${table.cols}`);
+  }
+  checkTensor(table, signals, table.cols, QUANTISED, 'seasonal.table');
+};
+
+const checkRadius = (bundle: Bundle, signals: number): void => {
+  checkTensor(bundle.bounds.radius, signals, bundle.horizon, QUANTISED, 'bounds.radius');
+  const values = dequantise(bundle.bounds.radius);
+  const at = values.findIndex((value) => value < 0);
+  if (at >= 0) refuse('bounds.radius', `element ${at}: expected a half-width >= 0, got ${values[at]}`);
+};
+
+const checkJudge = (bundle: Bundle, signals: number): void => {
+  const { horizons, rivals, mse, skill, coverage, verdicts } = bundle.judge;
+  for (const [i, step] of horizons.entries()) {
+    const least = i === 0 ? 0 : horizons[i - 1]!;
+    if (step <= least || step > bundle.horizon) {
+      refuse(`judge.horizons[${i}]`, `expected a step above ${least} and up to ${bundle.horizon}, got ${step}`);
+    }
+  }
+  checkTensor(mse, signals, horizons.length, FLOATS, 'judge.mse');
+  checkTensor(skill, signals * rivals.length, horizons.length, FLOATS, 'judge.skill');
+  checkTensor(coverage, signals, horizons.length, FLOATS, 'judge.coverage');
+  if (verdicts.length !== signals) {
+    refuse('judge.verdicts', `expected ${signals} sentences, one a signal, got ${verdicts.length}`);
+  }
+};
+
+/**
+ * Refuses a bundle whose fields disagree.
+ *
+ * shapes  as the interfaces of bundle.ts state them
+ * throws  ProtocolError 'schema' naming the field, 'tensor' naming the tensor; expected and got
+ */
+export const checkBundle = (bundle: Bundle): void => {
+  const signals = checkChannels(bundle.channels);
+  const expected = Buffer.from(bundleSchemaHash(bundle)).toString('hex');
+  const got = Buffer.from(bundle.schema).toString('hex');
+  if (expected !== got) refuse('schema', `expected ${expected} for these channels and this tick, got ${got}`);
+  checkLinear(bundle, signals);
+  checkSeasonal(bundle, signals);
+  checkRadius(bundle, signals);
+  checkJudge(bundle, signals);
+  const { last } = bundle.probe;
+  if (last.length !== bundle.horizon) {
+    refuse('probe.last', `expected ${bundle.horizon} numbers, one a step, got ${last.length}`);
+  }
+  const { firstMs, lastMs } = bundle.provenance;
+  if (firstMs > lastMs) refuse('provenance.firstMs', `expected a time up to lastMs (${lastMs}), got ${firstMs}`);
+};

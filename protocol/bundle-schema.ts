@@ -1,0 +1,125 @@
+/**
+ * Every field of the bundle document, each with what it may hold by itself; bundle-check.ts holds them against each other.
+ */
+import { z } from 'zod';
+import type { Bundle } from './bundle.ts';
+import { MAX_CHANNELS, MAX_HORIZON, MAX_LAG_TICKS, MAX_TICK_MS, MIN_TICK_MS } from './limits.ts';
+import { isName, NAME_RULE } from './name.ts';
+
+const bytes = z.instanceof(Uint8Array);
+const digest = bytes.refine((value) => value.length === 32, 'expected 32 bytes of SHA-256, got another length');
+const name = z.string().refine(isName, `expected ${NAME_RULE}`);
+const positive = z.number().positive();
+const time = z.int().min(-8.64e15).max(8.64e15);
+const seed = z
+  .int()
+  .min(0)
+  .max(2 ** 32 - 1);
+const count = z.int().min(0);
+const level = z.number().nullable();
+const share = z.number().gt(0).lt(1);
+
+/** A matrix as it stands in a document; lengths are checked where the shape is known. */
+export const tensorSchema = z.strictObject({
+  type: z.enum(['i8', 'i16', 'f32', 'f64']),
+  rows: count,
+  cols: count,
+  scales: bytes,
+  data: bytes,
+});
+
+/** Limits of a channel, in its unit. */
+export const bundleLimitsSchema = z.strictObject({ highHigh: level, high: level, low: level, lowLow: level });
+
+/** One signal or input. */
+export const channelSchema = z.strictObject({
+  name,
+  role: z.enum(['signal', 'input']),
+  unit: z.string().min(1).max(40),
+  aggregate: z.enum(['last', 'mean', 'min', 'max', 'sum', 'increment']),
+  lattice: z.strictObject({ step: positive, offset: z.number() }),
+  clip: z.tuple([z.number(), z.number()]),
+  mean: z.number(),
+  scale: positive,
+  limits: bundleLimitsSchema,
+  residualScale: positive,
+});
+
+/** Tensors and numbers of the linear kind. */
+export const linearSchema = z.strictObject({
+  decays: z.array(share).max(64),
+  resonators: z.array(z.tuple([z.number(), z.number()])).max(64),
+  lags: z.array(z.int().min(1).max(MAX_LAG_TICKS)).max(64),
+  featureExponents: tensorSchema,
+  bottleneck: tensorSchema,
+  readout: tensorSchema,
+  horizonBasis: tensorSchema,
+});
+
+/** Where long gaps fade to. */
+export const seasonalSchema = z.strictObject({ periodTicks: count, table: tensorSchema });
+
+/** Half-widths of the bounds. */
+export const boundsSchema = z.strictObject({ coverage: share, radius: tensorSchema, rate: share });
+
+/** When a reading is passed over. */
+export const guardSchema = z.strictObject({ rejectSd: positive, maxTicks: count });
+
+/** Gates of trial and probation. */
+export const gatesSchema = z.strictObject({ worseRatio: positive, trialTicks: count, probationTicks: count });
+
+/** What it was learned from. */
+export const provenanceSchema = z.strictObject({
+  historyDigest: digest,
+  surveyDigest: digest,
+  firstMs: time,
+  lastMs: time,
+  ticks: count,
+  previous: digest.nullable(),
+  seed,
+  options: z.string().max(8192),
+  versions: z.record(z.string().min(1).max(64), z.string().max(64)),
+});
+
+/** The judge's numbers. */
+export const judgeSchema = z.strictObject({
+  horizons: z.array(z.int().min(1).max(MAX_HORIZON)).max(64),
+  rivals: z.array(z.string().min(1).max(64)).max(16),
+  mse: tensorSchema,
+  skill: tensorSchema,
+  coverage: tensorSchema,
+  verdicts: z.array(z.string().min(1).max(400)),
+  hasSkill: z.boolean(),
+  override: z.string().min(1).max(1000).nullable(),
+});
+
+/** The replay that proves the arithmetic. */
+export const probeSchema = z.strictObject({
+  seed,
+  ticks: z.int().min(1).max(100_000),
+  digest,
+  last: z.array(z.number()).max(MAX_HORIZON),
+});
+
+/** The whole document. */
+export const bundleSchema = z.strictObject({
+  format: z.int(),
+  arithmetic: z.int(),
+  kind: z.literal('linear'),
+  site: name,
+  equipmentClass: name,
+  schema: digest,
+  madeAtMs: time,
+  tickMs: z.int().min(MIN_TICK_MS).max(MAX_TICK_MS),
+  horizon: z.int().min(1).max(MAX_HORIZON),
+  channels: z.array(channelSchema).min(1).max(MAX_CHANNELS),
+  linear: linearSchema,
+  seasonal: seasonalSchema,
+  bounds: boundsSchema,
+  guard: guardSchema,
+  warmupTicks: count,
+  gates: gatesSchema,
+  provenance: provenanceSchema,
+  judge: judgeSchema,
+  probe: probeSchema,
+}) satisfies z.ZodType<Bundle>;
