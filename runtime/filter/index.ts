@@ -1,11 +1,12 @@
 /** The filter: from readings, tick by tick, to state, forecasts and bounds; the same arithmetic on gateway and trainer. */
 export { FEATURE_LIMIT } from './bank.ts';
 export { checkModel } from './check.ts';
+export { type Crossing, crossing } from './crossing.ts';
 export * from './errors.ts';
 export { forecastPath, predictNext } from './forecast.ts';
 export { type Bounds, createBounds, intervalOf, trackBounds } from './interval.ts';
 export { type LinearModel, modelFromBundle } from './model.ts';
-export { normalCdf, normalQuantile } from './normal-table.ts';
+export { normalCdf, normalDensity, normalQuantile } from './normal-table.ts';
 export * from './probe.ts';
 export { restoreBounds, restoreState, saveBounds, saveState } from './snapshot.ts';
 export { createState, type FilterState, FOLDED, MISSING, PASSED_OVER } from './state.ts';

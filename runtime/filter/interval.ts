@@ -43,6 +43,10 @@ export interface Bounds {
    * ny · h(h − 1)/2: the slot tick mod h holds the forecast issued h ticks ago, until the new one takes its place.
    */
   readonly issued: Float32Array;
+  /** Normal quantile of the coverage: a half-width is that many standard deviations of a normal error. */
+  readonly quantile: number;
+  /** (H) for work inside one call. */
+  readonly scratch: Float64Array;
 }
 
 /**
@@ -63,6 +67,7 @@ export function createBounds(model: LinearModel): Bounds {
       calibrated[c] = Math.min(ceiling[i], Math.max(floor[c], model.radius[c]));
     }
   }
+  const quantile = normalQuantile(0.5 + model.coverage / 2);
   return {
     tick: -1,
     warmed: 0,
@@ -70,8 +75,10 @@ export function createBounds(model: LinearModel): Bounds {
     calibrated,
     floor,
     ceiling,
-    spread: new Float64Array(ny).fill(normalQuantile(0.5 + model.coverage / 2)),
+    spread: new Float64Array(ny).fill(quantile),
     issued: new Float32Array((ny * H * (H + 1)) / 2).fill(Number.NaN),
+    quantile,
+    scratch: new Float64Array(H),
   };
 }
 
