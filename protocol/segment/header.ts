@@ -18,13 +18,15 @@
  * | then | 1-2 | signals among them |
  * | then | 2-130 | site: length in bytes, then UTF-8 |
  * | then | 2-130 | gateway: length in bytes, then UTF-8 |
- * | then | 4 | CRC-32 of the start state |
- * | then | 4 | CRC-32 of the end state |
+ * | then | 4 | check of the start state |
+ * | then | 4 | check of the end state |
  * | then | 0 or 2.. | keyed start only: length, then the start state in raw DEFLATE (RFC 1951) |
  * | then | 0 or 2.. | corrections only: count, length, then late readings, range coded |
  * | then | 0.. | payload: the readings, range coded, up to the last 4 bytes |
  * | last 4 | 4 | CRC-32 of every byte before |
  *
+ * The check of a state is the first 4 bytes of its SHA-256. A CRC would not do: a snapshot ends in its own CRC-32, and the
+ * CRC-32 of any bytes followed by their CRC-32 is one constant, so that every state would pass for every other.
  * CRC-32 is the one of ITU-T V.42 (zlib). The content hash of a segment is SHA-256 over all its bytes, CRC included.
  */
 import { createHash } from 'node:crypto';
@@ -66,10 +68,10 @@ export interface SegmentHead {
   readonly signalCount: number;
   /** 'keyed': the filter's state at the start is inside; 'chained': it is the end state of the segment before. */
   readonly start: 'chained' | 'keyed';
-  /** Inflated start state of a keyed segment, its CRC checked; null when chained. */
+  /** Inflated start state of a keyed segment, its check done; null when chained. */
   readonly startState: Uint8Array | null;
-  readonly startCrc: number;
-  readonly endCrc: number;
+  readonly startCheck: number;
+  readonly endCheck: number;
 }
 
 /** Head and where the coded parts lie. */
@@ -83,6 +85,11 @@ export interface SegmentParts {
 /** SHA-256 over all bytes of a segment: its name in receipts. 32 bytes. */
 export function segmentHash(bytes: Uint8Array): Uint8Array {
   return new Uint8Array(createHash('sha256').update(bytes).digest());
+}
+
+/** First 4 bytes of SHA-256 over a saved filter state, as one number: equal for equal states alone, for all practical purposes. */
+export function stateCheck(state: Uint8Array): number {
+  return createHash('sha256').update(state).digest().readUInt32BE(0);
 }
 
 /**
@@ -114,9 +121,9 @@ export function readSegmentParts(bytes: Uint8Array): SegmentParts {
     throw segmentError(`segment size: expected at most ${MAX_SEGMENT_VALUES} values, got ${ticks} × ${channelCount}`);
   const site = readName(cursor, 'site');
   const gateway = readName(cursor, 'gateway');
-  const startCrc = cursor.uint32('start checksum');
-  const endCrc = cursor.uint32('end checksum');
-  const startState = flags & KEYED ? readState(cursor, startCrc) : null;
+  const startCheck = cursor.uint32('start state check');
+  const endCheck = cursor.uint32('end state check');
+  const startState = flags & KEYED ? readState(cursor, startCheck) : null;
   let correctionCount = 0;
   let corrections: Uint8Array = new Uint8Array(0);
   if (flags & HAS_CORRECTIONS) {
@@ -138,7 +145,7 @@ export function readSegmentParts(bytes: Uint8Array): SegmentParts {
     channelCount,
     signalCount,
   };
-  const head: SegmentHead = Object.freeze({ ...where, start, startState, startCrc, endCrc });
+  const head: SegmentHead = Object.freeze({ ...where, start, startState, startCheck, endCheck });
   return { head, correctionCount, corrections, payload };
 }
 
@@ -177,8 +184,8 @@ export function writeSegmentHead(
     sink.varint(value);
   writeName(sink, fields.site);
   writeName(sink, fields.gateway);
-  sink.uint32(crc32(fields.startState));
-  sink.uint32(crc32(endState));
+  sink.uint32(stateCheck(fields.startState));
+  sink.uint32(stateCheck(endState));
   if (fields.keyed) {
     const deflated = deflateRawSync(fields.startState, { level: 9 });
     sink.varint(deflated.length);
@@ -255,11 +262,12 @@ function readName(cursor: ByteCursor, field: string): string {
   }
 }
 
-function readState(cursor: ByteCursor, startCrc: number): Uint8Array {
+function readState(cursor: ByteCursor, startCheck: number): Uint8Array {
   const deflated = cursor.take(cursor.varint('start state length', 1, cursor.end), 'start state');
   const state = inflate(deflated);
-  if (crc32(state) !== startCrc)
-    throw segmentError(`segment start state: expected checksum ${hex(startCrc)}, got ${hex(crc32(state))}`);
+  const found = stateCheck(state);
+  if (found !== startCheck)
+    throw segmentError(`segment start state: expected check ${hex(startCheck)}, got ${hex(found)}`);
   return state;
 }
 

@@ -2,10 +2,9 @@
  * Takes the readings back out of a segment, one tick at a time, so that the filter can run beside it: the forecast made
  * before each tick is what the tick was coded against.
  */
-import { crc32 } from 'node:zlib';
 import { BitDecoder } from './coder.ts';
 import { type Correction, decodeCorrections } from './corrections.ts';
-import { readSegmentParts, type SegmentHead } from './header.ts';
+import { readSegmentParts, type SegmentHead, stateCheck } from './header.ts';
 import { segmentError } from './limits.ts';
 import { TickModel } from './tick-model.ts';
 
@@ -55,11 +54,11 @@ export class SegmentReader {
    * throws  ProtocolError 'segment' naming which end disagrees
    */
   checkState(which: 'start' | 'end', state: Uint8Array): void {
-    const expected = which === 'start' ? this.head.startCrc : this.head.endCrc;
-    const got = crc32(state);
+    const expected = which === 'start' ? this.head.startCheck : this.head.endCheck;
+    const got = stateCheck(state);
     if (got !== expected)
       throw segmentError(
-        `segment ${this.head.number} ${which} state: expected CRC-32 ${expected.toString(16)}, got ${got.toString(16)}; ` +
+        `segment ${this.head.number} ${which} state: expected check ${expected.toString(16)}, got ${got.toString(16)}; ` +
           'the replay does not stand where the gateway stood (another bundle, or a segment missing before it)',
         { which, expected, got },
       );

@@ -80,7 +80,7 @@ export class SegmentWriter {
     this.#corrections.push({ tick, channel, index: latticeIndex });
   }
 
-  /** Closes the segment; `endState` is the filter's saved state after the last tick, of which the segment keeps a CRC. */
+  /** Closes the segment; `endState` is the filter's saved state after the last tick, of which the segment keeps a check. */
   finish(endState: Uint8Array): Uint8Array {
     this.#checkOpen();
     this.#finished = true;
