@@ -25,5 +25,5 @@ export async function loadHistory(files: readonly string[], site: Site, options:
   const history = await readHistory(files, site, options);
   const lattices = findLattices(history, site);
   const series = layOnTicks(history, site, lattices);
-  return { history, series, lattices, survey: surveyHistory(history, series, site) };
+  return { history, series, lattices, survey: surveyHistory(history, series, site, lattices) };
 }

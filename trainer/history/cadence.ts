@@ -1,0 +1,84 @@
+/**
+ * How often a signal was read: the usual interval, how much it wavers, and the tick that suits it.
+ */
+import { counted, type Finding, lengthOf } from './finding.ts';
+import type { ChannelReadings } from './history.ts';
+
+const SECOND = 1000;
+const MINUTE = 60 * SECOND;
+const HOUR = 60 * MINUTE;
+/** Steps people use; each divides a day, so that ticks fall alike on every day. */
+const STEPS_MS = [
+  ...[1, 2, 3, 5, 6, 10, 12, 15, 20, 30].map((n) => n * SECOND),
+  ...[1, 2, 3, 5, 6, 10, 12, 15, 20, 30].map((n) => n * MINUTE),
+  ...[1, 2, 3, 4, 6, 12, 24].map((n) => n * HOUR),
+];
+/** A usual interval this much below a step still counts as that step: clocks waver. */
+const WAVER = 1.02;
+/** Jitter beyond this share of the interval is worth a word. */
+const JITTER_SHARE = 0.2;
+
+/** Intervals between readings, ms; NaN where fewer than two readings exist. */
+export interface Cadence {
+  readonly intervalMs: number;
+  /** Median absolute deviation of the intervals from the usual one. */
+  readonly jitterMs: number;
+}
+
+/** Cadence of readings in order of time; readings without a value do not count. */
+export function cadenceOf(channel: ChannelReadings, order: Uint32Array | null): Cadence {
+  const intervals = new Float64Array(channel.times.length);
+  let count = 0;
+  let previous = Number.NaN;
+  for (let n = 0; n < channel.times.length; n++) {
+    const i = order === null ? n : (order[n] as number);
+    if (Number.isNaN(channel.values[i])) continue;
+    const time = channel.times[i] as number;
+    if (time > previous) intervals[count++] = time - previous;
+    previous = time;
+  }
+  const sorted = intervals.subarray(0, count).sort();
+  if (count === 0) return { intervalMs: Number.NaN, jitterMs: Number.NaN };
+  const intervalMs = sorted[count >> 1] as number;
+  const away = sorted.map((interval) => Math.abs(interval - intervalMs)).sort();
+  return { intervalMs, jitterMs: away[count >> 1] as number };
+}
+
+/** Tick for signals read at these usual intervals: the smallest step no signal is slower than. */
+export function suggestTick(intervalsMs: readonly number[]): number {
+  const slowest = Math.max(...intervalsMs.filter((interval) => interval > 0), SECOND);
+  return STEPS_MS.find((step) => step * WAVER >= slowest) ?? (STEPS_MS.at(-1) as number);
+}
+
+/** Says where the site's tick does not suit a signal, or its clock wavers. */
+export function cadenceFindings(name: string, cadence: Cadence, tickMs: number): Finding[] {
+  const { intervalMs, jitterMs } = cadence;
+  const whole = { kind: 'cadence', signal: name, from: null, to: null } as const;
+  const found: Finding[] = [];
+  if (intervalMs > tickMs * WAVER)
+    found.push({
+      ...whole,
+      weight: 'look',
+      count: Math.round(intervalMs / tickMs),
+      sentence: `${name} is read every ${lengthOf(intervalMs)}, more slowly than the tick of ${lengthOf(tickMs)}: most ticks have no reading.`,
+      advice: 'Take a longer tick, or keep this signal out.',
+    });
+  const perTick = Math.round(tickMs / intervalMs);
+  if (intervalMs > 0 && perTick >= 2)
+    found.push({
+      ...whole,
+      weight: 'note',
+      count: perTick,
+      sentence: `${name} is read every ${lengthOf(intervalMs)}: about ${counted(perTick, 'reading')} make one tick of ${lengthOf(tickMs)}.`,
+      advice: 'Check that the aggregate of the signal in the site file is the one wanted.',
+    });
+  if (jitterMs > JITTER_SHARE * intervalMs)
+    found.push({
+      ...whole,
+      weight: 'note',
+      count: Math.round(jitterMs),
+      sentence: `${name} comes irregularly: usually ${lengthOf(intervalMs)} apart, half of the intervals more than ${lengthOf(jitterMs)} off that.`,
+      advice: 'Nothing to do if readings are sent on change; else look at the logger.',
+    });
+  return found;
+}
