@@ -65,8 +65,8 @@ export function crossing(
     const chance = Math.max(LEAST_CHANCE, normalCdf(a));
     const pull = normalDensity(a) / chance;
     mean -= spread * pull;
-    // Never quite zero, so that the next division stands.
-    variance *= Math.max(1e-6, 1 - a * pull - pull * pull);
+    // Truncation never widens; never quite zero, so that the next division stands.
+    variance *= Math.min(1, Math.max(1e-6, 1 - a * pull - pull * pull));
     stayed *= chance;
     largest = Math.max(largest, 1 - normalCdf(room / sd));
     before = sd;
