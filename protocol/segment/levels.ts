@@ -1,0 +1,78 @@
+/**
+ * Counts of what followed what, for channels that know only a few levels (a pump on or off, a valve in nine places).
+ * As soon as a channel shows more than MAX_LEVELS levels the table gives up for the rest of the segment.
+ */
+
+const MAX_LEVELS = 16;
+/** A level's count after any level, as a share of a count after this very one. */
+const OVERALL_SHARE = 1;
+
+export class LevelTable {
+  /** In order of first sight. */
+  readonly #levels = new Float64Array(MAX_LEVELS);
+  /** Row: level before, column: level after. */
+  readonly #counts = new Float64Array(MAX_LEVELS * MAX_LEVELS);
+  readonly #overall = new Float64Array(MAX_LEVELS);
+  /** Probability of each level next, as `prepare` left it. */
+  readonly #mass = new Float64Array(MAX_LEVELS);
+  #count = 0;
+  #gaveUp = false;
+
+  /** Readies the probabilities of the next index after `last`; false when the table has nothing to say. */
+  prepare(last: number): boolean {
+    if (this.#gaveUp || this.#count === 0) return false;
+    const from = this.#find(last);
+    let overall = 0;
+    let total = 0;
+    for (let i = 0; i < this.#count; i++) {
+      overall += this.#overall[i]!;
+      if (from >= 0) total += this.#counts[from * MAX_LEVELS + i]!;
+    }
+    total += OVERALL_SHARE;
+    for (let i = 0; i < this.#count; i++) {
+      const seen = from >= 0 ? this.#counts[from * MAX_LEVELS + i]! : 0;
+      this.#mass[i] = (seen + (OVERALL_SHARE * this.#overall[i]!) / overall) / total;
+    }
+    return true;
+  }
+
+  /** Probability that sign × index ≥ x. */
+  tail(sign: number, x: number): number {
+    let sum = 0;
+    for (let i = 0; i < this.#count; i++) if (sign * this.#levels[i]! >= x) sum += this.#mass[i]!;
+    return sum;
+  }
+
+  /** Probability of exactly `index`. */
+  massOf(index: number): number {
+    const at = this.#find(index);
+    return at >= 0 ? this.#mass[at]! : 0;
+  }
+
+  /** Counts `index` after `last`. */
+  learn(last: number, index: number): void {
+    if (this.#gaveUp) return;
+    const to = this.#findOrAdd(index);
+    if (this.#gaveUp) return;
+    this.#overall[to]!++;
+    const from = this.#find(last);
+    if (from >= 0) this.#counts[from * MAX_LEVELS + to]!++;
+  }
+
+  #find(index: number): number {
+    for (let i = 0; i < this.#count; i++) if (this.#levels[i] === index) return i;
+    return -1;
+  }
+
+  #findOrAdd(index: number): number {
+    const found = this.#find(index);
+    if (found >= 0) return found;
+    if (this.#count === MAX_LEVELS) {
+      this.#gaveUp = true;
+      return -1;
+    }
+    const at = this.#count++;
+    this.#levels[at] = index;
+    return at;
+  }
+}
