@@ -2,12 +2,13 @@
  * Every field of the bundle document, each with what it may hold by itself; bundle-check.ts holds them against each other.
  */
 import { z } from 'zod';
+import { binary } from './binary.ts';
 import type { Bundle } from './bundle.ts';
 import { MAX_CHANNELS, MAX_HORIZON, MAX_LAG_TICKS, MAX_TICK_MS, MIN_TICK_MS } from './limits.ts';
 import { isName, NAME_RULE } from './name.ts';
 
-const bytes = z.instanceof(Uint8Array);
-const digest = bytes.refine((value) => value.length === 32, 'expected 32 bytes of SHA-256, got another length');
+const bytes = binary();
+const digest = binary(32);
 const name = z.string().refine(isName, `expected ${NAME_RULE}`);
 const positive = z.number().positive();
 const time = z.int().min(-8.64e15).max(8.64e15);

@@ -98,7 +98,10 @@ export const listFaults = (
       }));
     }
     const got = valueAt(root, issue.path);
-    const text = issue.code === 'custom' ? issue.message : `expected ${expectation(issue)}, got ${showValue(got)}`;
+    const isWhole =
+      issue.code === 'custom' && (!issue.message.startsWith('expected ') || issue.message.includes(', got '));
+    const wanted = issue.code === 'custom' ? issue.message : `expected ${expectation(issue)}`;
+    const text = isWhole ? wanted : `${wanted}, got ${showValue(got)}`;
     return [{ path: issue.path, isUnknownKey: false, text }];
   });
   return faults.sort((a, b) => Number(b.isUnknownKey) - Number(a.isUnknownKey));

@@ -5,7 +5,7 @@ export const SEGMENT_FORMAT = 1;
 /** Number of the filter's arithmetic: the fixed order of + - × ÷ √ that makes two machines agree to the bit. */
 export const ARITHMETIC = 1;
 /** Number carried by every JSON message as `format`. */
-export const MESSAGE_FORMAT = 1;
+export const MESSAGE_FORMAT = 1 as const;
 /** The mark that every published message carries. */
 export const ADVISORY =
   'Advisory estimate. Not a safety function; no SIL claimed. Do not use as the only basis for action, ' +

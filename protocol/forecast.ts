@@ -1,0 +1,127 @@
+/**
+ * The forecast message of one signal: median and bounds step by step, and how soon a limit will probably be crossed.
+ * Retained JSON, one topic a signal.
+ */
+import { z } from 'zod';
+import { ProtocolError } from './errors.ts';
+import { formatInstant } from './instant.ts';
+import { MAX_HORIZON } from './limits.ts';
+import { headFields, instantSchema, type MessageHead, nameSchema, readJson, writeHead, writeJson } from './message.ts';
+
+/** Names of limits in messages. */
+export const LIMIT_NAMES = ['high_high', 'high', 'low', 'low_low'] as const;
+/** One of them. */
+export type LimitName = (typeof LIMIT_NAMES)[number];
+
+const path = z.array(z.number()).min(1).max(MAX_HORIZON);
+
+/** One limit's outlook. */
+export const limitOutlookSchema = z.strictObject({
+  limit: z.enum(LIMIT_NAMES),
+  value: z.number(),
+  probability: z.number().min(0).max(1),
+  time: instantSchema.nullable(),
+});
+
+/** Every field of a forecast message. */
+export const forecastSchema = z.strictObject({
+  ...headFields('forecast'),
+  signal: nameSchema,
+  unit: z.string().min(1),
+  origin: instantSchema,
+  tick_s: z.number().positive(),
+  coverage: z.number().gt(0).lt(1),
+  median: path,
+  lower: path,
+  upper: path,
+  limits: z.array(limitOutlookSchema).max(LIMIT_NAMES.length),
+  inputs: z.enum(['none', 'held', 'planned']),
+  last_reading_at: instantSchema.nullable(),
+});
+
+/** A forecast message as it stands in JSON. */
+export type ForecastMessage = z.output<typeof forecastSchema>;
+
+/** How soon a limit will probably be crossed. */
+export interface LimitOutlook {
+  readonly limit: LimitName;
+  /** The limit, in the signal's unit. */
+  readonly value: number;
+  /** Probability of a crossing within the horizon. */
+  readonly probability: number;
+  /** When a crossing is first more likely than not; null if never within the horizon. */
+  readonly timeMs: number | null;
+}
+
+/** What a forecast message is made of, beside the head. */
+export interface ForecastFacts extends MessageHead {
+  readonly signal: string;
+  readonly unit: string;
+  /** Label of the last tick folded in; step h stands for origin + h ticks, at index h - 1. */
+  readonly originMs: number;
+  readonly tickMs: number;
+  /** Share of readings the bounds are meant to hold. */
+  readonly coverage: number;
+  /** (H) each, in `unit`. */
+  readonly median: ArrayLike<number>;
+  readonly lower: ArrayLike<number>;
+  readonly upper: ArrayLike<number>;
+  readonly limits: readonly LimitOutlook[];
+  /** Whether the site has inputs and, if so, whether their last values were held or a plan was used. */
+  readonly inputs: 'none' | 'held' | 'planned';
+  readonly lastReadingMs: number | null;
+}
+
+/** Refuses paths of unlike lengths and bounds that do not hold the median. */
+const checkPaths = (message: ForecastMessage): ForecastMessage => {
+  const { median, lower, upper } = message;
+  if (lower.length !== median.length || upper.length !== median.length) {
+    const got = `median ${median.length}, lower ${lower.length}, upper ${upper.length}`;
+    throw new ProtocolError('schema', `forecast message: expected three paths of one length, got ${got}`);
+  }
+  const at = median.findIndex((value, i) => !(lower[i]! <= value && value <= upper[i]!));
+  if (at >= 0) {
+    const got = `${lower[at]}, ${median[at]}, ${upper[at]}`;
+    throw new ProtocolError(
+      'schema',
+      `forecast message: step ${at + 1}: expected lower <= median <= upper, got ${got}`,
+    );
+  }
+  return message;
+};
+
+/**
+ * Payload of one signal's forecast.
+ *
+ * shapes  median, lower, upper (H), step h at index h - 1
+ * units   times ms since 1970; paths and limits in the signal's unit
+ * throws  ProtocolError 'encode' on a number that is not finite, 'schema' on paths that do not fit together
+ */
+export const forecastMessage = (facts: ForecastFacts): Uint8Array => {
+  const message: ForecastMessage = {
+    ...writeHead('forecast', facts),
+    signal: facts.signal,
+    unit: facts.unit,
+    origin: formatInstant(facts.originMs),
+    tick_s: facts.tickMs / 1000,
+    coverage: facts.coverage,
+    median: Array.from(facts.median),
+    lower: Array.from(facts.lower),
+    upper: Array.from(facts.upper),
+    limits: facts.limits.map(({ limit, value, probability, timeMs }) => ({
+      limit,
+      value,
+      probability,
+      time: timeMs === null ? null : formatInstant(timeMs),
+    })),
+    inputs: facts.inputs,
+    last_reading_at: facts.lastReadingMs === null ? null : formatInstant(facts.lastReadingMs),
+  };
+  const payload = writeJson(message);
+  checkPaths(message);
+  return payload;
+};
+
+/** Reads a forecast message; throws ProtocolError 'size', 'decode', 'format' or 'schema'. */
+export const parseForecastMessage = (payload: Uint8Array): ForecastMessage =>
+  checkPaths(readJson(forecastSchema, 'forecast', payload));
