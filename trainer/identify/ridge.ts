@@ -94,23 +94,78 @@ export function ownMap(moments: Moments, layout: Layout, penalties: readonly num
 }
 
 /**
- * Cross-stage map of what the own stage left.
+ * The equations of the cross stage: what the own stage left, on the features of all channels.
  *
- * shapes  own (p × ny·steps); result likewise, to be added to `own`
+ * shapes  own (p × ny·steps); right likewise; gram(penalty) (p × p)
+ * units   standardised; sums
+ * throws  nothing
+ * source  as `ridgeOwn`, on the residual: its cross moments are R - S own
+ * cost    O(p² ny steps)
+ */
+export function crossSystem(
+  moments: Moments,
+  layout: Layout,
+  own: Float64Array,
+): { readonly right: Float64Array; readonly gram: (penalty: number) => Float64Array } {
+  const p = layout.channelCount * layout.featureCount;
+  const right = multiply(moments.features, own, p, p, layout.signalCount * layout.steps);
+  for (let k = 0; k < right.length; k++) right[k] = moments.future[k] - right[k];
+  const gram = (penalty: number): Float64Array => {
+    const out = moments.features.slice();
+    addPenalty(out, p, penalty);
+    return out;
+  };
+  return { right, gram };
+}
+
+/**
+ * The whole map: own stage, and the cross stage for the signals that have a penalty for it.
+ *
+ * shapes  ownPenalty, crossPenalty (ny); result (p × ny·steps)
  * units   standardised change per feature
  * throws  as `ridgeOwn`
- * source  as `ridgeOwn`, on the residual: its cross moments are R - S own
- * cost    O(p³/6 + 2 p² ny steps)
+ * source  as `ridgeOwn`
+ * cost    O(p³/6 + 2 p² steps) a distinct cross penalty and signal
  */
-export function crossMap(moments: Moments, layout: Layout, own: Float64Array, penalty: number): Float64Array {
+export function twoStageMap(
+  moments: Moments,
+  layout: Layout,
+  ownPenalty: readonly number[],
+  crossPenalty: readonly (number | null)[],
+): Float64Array {
+  const { steps, signalCount } = layout;
   const p = layout.channelCount * layout.featureCount;
-  const width = layout.signalCount * layout.steps;
-  const map = multiply(moments.features, own, p, p, width);
-  for (let k = 0; k < map.length; k++) map[k] = moments.future[k] - map[k];
-  const gram = moments.features.slice();
-  addPenalty(gram, p, penalty);
-  solveCholesky(cholesky(gram, p), p, map, width);
+  const width = signalCount * steps;
+  const map = ownMap(moments, layout, ownPenalty);
+  const system = crossSystem(moments, layout, map);
+  for (const penalty of new Set(crossPenalty)) {
+    if (penalty === null) continue;
+    const signals = crossPenalty.flatMap((own, i) => (own === penalty ? [i] : []));
+    const right = new Float64Array(p * signals.length * steps);
+    eachEntry(p, signals, steps, width, (packed, full) => {
+      right[packed] = system.right[full];
+    });
+    solveCholesky(cholesky(system.gram(penalty), p), p, right, signals.length * steps);
+    eachEntry(p, signals, steps, width, (packed, full) => {
+      map[full] += right[packed];
+    });
+  }
   return map;
+}
+
+/** Pairs of places of the chosen signals' columns: in a matrix of those alone, and in the full one. */
+function eachEntry(
+  p: number,
+  signals: readonly number[],
+  steps: number,
+  width: number,
+  visit: (packed: number, full: number) => void,
+): void {
+  for (let f = 0; f < p; f++) {
+    signals.forEach((i, k) => {
+      for (let h = 0; h < steps; h++) visit((f * signals.length + k) * steps + h, f * width + i * steps + h);
+    });
+  }
 }
 
 /**

@@ -1,0 +1,205 @@
+/**
+ * Chooses bank and penalties by rolling origin over several groups, inside the learning and calibration parts. Errors
+ * come from moments, so a fold costs some small solves and no pass over the readings. A single validation block would be
+ * quicker still, but one block of a year is often unlike the next.
+ */
+import { cholesky, solveCholesky } from '../linalg/cholesky.ts';
+import { type Bank, featureCount } from './bank.ts';
+import { addMoments, pickMoments } from './moment-sets.ts';
+import type { Moments } from './moments.ts';
+import { crossSystem, type Layout, mapError, ownFeatures, ownMap, ridgeOwn } from './ridge.ts';
+
+/** What was chosen, with the validation error it had. */
+export interface Choice {
+  readonly bank: Bank;
+  /** Kept feature indices within a channel of the widest bank. */
+  readonly kept: readonly number[];
+  /** (ny) */
+  readonly ownPenalty: readonly number[];
+  /** (ny) null: the cross stage does not pay for this signal. */
+  readonly crossPenalty: readonly (number | null)[];
+  readonly folds: number;
+}
+
+const OWN_PENALTIES = [0.01, 0.03, 0.1, 0.3, 1, 3] as const;
+const CROSS_PENALTIES = [1, 3, 10, 30] as const;
+/** A smaller model within this share of the best is preferred. */
+const TIE = 0.002;
+/** A signal departs from the common penalty only for this gain, and takes the cross stage only for that one. */
+const OWN_GAIN = 0.02;
+const CROSS_GAIN = 0.001;
+/** Folds learn from at least this many groups where there are enough. */
+const FIRST_FOLD = 3;
+
+interface Fold {
+  readonly learn: Moments;
+  readonly judge: Moments;
+}
+
+/**
+ * Chooses.
+ *
+ * shapes  groups in time order, of the widest bank's moments
+ * units   standardised
+ * throws  TrainError 'fit' from the solves
+ * source  rolling origin: Tashman (2000)
+ * cost    folds × (banks × penalties × ny own solves + penalties cross solves)
+ */
+export function choose(groups: readonly Moments[], bank: Bank, layout: Layout): Choice {
+  const steps = trialSteps(layout.steps);
+  const candidates = banks(bank).map((candidate) => {
+    const trial = { ...layout, featureCount: candidate.kept.length, steps: steps.length };
+    const folds = makeFolds(groups.map((moments) => pickMoments(moments, layout, candidate.kept, steps)));
+    return { ...candidate, trial, folds, own: chooseOwn(folds, trial) };
+  });
+  const best = Math.min(...candidates.map((candidate) => candidate.own.error));
+  const picked = candidates.find((candidate) => candidate.own.error <= best * (1 + TIE)) ?? candidates[0];
+  return {
+    bank: picked.bank,
+    kept: picked.kept,
+    ownPenalty: picked.own.penalties,
+    crossPenalty: chooseCross(picked.folds, picked.trial, picked.own.penalties),
+    folds: picked.folds.length,
+  };
+}
+
+/**
+ * Steps at which a choice is judged: the first, and evenly on to the horizon.
+ *
+ * shapes  result ascending, at most 7
+ * units   steps
+ * throws  nothing
+ * source  own choice
+ * cost    trivial
+ */
+export function trialSteps(horizon: number): number[] {
+  const steps = new Set<number>([1]);
+  for (let k = 1; k <= 6; k++) steps.add(Math.max(1, Math.round((k * horizon) / 6)));
+  return [...steps].sort((a, b) => a - b);
+}
+
+function makeFolds(groups: readonly Moments[]): Fold[] {
+  const first = Math.max(1, Math.min(FIRST_FOLD, groups.length - 2));
+  const folds: Fold[] = [];
+  let learn = addMoments(groups.slice(0, first));
+  for (let g = first; g < groups.length; g++) {
+    folds.push({ learn, judge: groups[g] });
+    learn = addMoments([learn, groups[g]]);
+  }
+  return folds;
+}
+
+/** Sub-banks from small to wide. */
+function banks(bank: Bank): { readonly bank: Bank; readonly kept: readonly number[] }[] {
+  const means = bank.decays.length;
+  const resonators = bank.resonators.length;
+  const sizes: (readonly [number, number])[] = [
+    [Math.min(4, means), 0],
+    [means, 0],
+    [means, Math.ceil(resonators / 3)],
+    [means, resonators],
+  ];
+  const distinct = sizes.filter(([m, r], at) => sizes.findIndex(([a, b]) => a === m && b === r) === at);
+  return distinct.map(([m, r]) => {
+    const kept: number[] = [];
+    for (let f = 0; f < m; f++) kept.push(f);
+    for (let f = 0; f < 2 * r; f++) kept.push(means + f);
+    const smaller = { decays: bank.decays.slice(0, m), resonators: bank.resonators.slice(0, r), lags: [] };
+    if (featureCount(smaller) !== kept.length) throw new RangeError('A sub-bank lost count of its features.');
+    return { bank: smaller, kept };
+  });
+}
+
+/**
+ * One penalty for all signals, the one with the least geometric mean error over folds, so that no fold speaks louder than
+ * another; a signal departs from it only for a clear gain of its own, since a choice for each alone follows the noise of
+ * the folds.
+ */
+function chooseOwn(folds: readonly Fold[], layout: Layout): { penalties: number[]; error: number } {
+  const errors = OWN_PENALTIES.map((penalty) =>
+    folds.map((fold) =>
+      Float64Array.from({ length: layout.signalCount }, (_, i) =>
+        ownError(fold, layout, i, ownFeatures(layout, i), penalty),
+      ),
+    ),
+  );
+  const common = leastIndex(errors.map((perFold) => geometric(perFold.map(total))));
+  const picked = Array.from({ length: layout.signalCount }, (_, i) => {
+    const own = errors.map((perFold) => geometric(perFold.map((signals) => signals[i])));
+    const best = leastIndex(own);
+    return own[best] < own[common] * (1 - OWN_GAIN) ? best : common;
+  });
+  const chosen = folds.map((_, f) => Float64Array.from(picked, (k, i) => errors[k][f][i]));
+  return { penalties: picked.map((k) => OWN_PENALTIES[k]), error: geometric(chosen.map(total)) };
+}
+
+/** Mean squared error of one signal's own map on the fold's judge, over the steps. */
+function ownError(fold: Fold, layout: Layout, signal: number, chosen: Int32Array, penalty: number): number {
+  const map = ridgeOwn(fold.learn, layout, signal, chosen, penalty);
+  const p = layout.channelCount * layout.featureCount;
+  const width = layout.signalCount * layout.steps;
+  const { steps } = layout;
+  const { features, future, energy, origins } = fold.judge;
+  let sum = 0;
+  for (let h = 0; h < steps; h++) sum += energy[signal * steps + h];
+  const pushed = new Float64Array(steps);
+  for (let a = 0; a < chosen.length; a++) {
+    pushed.fill(0);
+    for (let b = 0; b < chosen.length; b++) {
+      const s = features[chosen[a] * p + chosen[b]];
+      for (let h = 0; h < steps; h++) pushed[h] += s * map[b * steps + h];
+    }
+    const row = chosen[a] * width + signal * steps;
+    for (let h = 0; h < steps; h++) sum += map[a * steps + h] * (pushed[h] - 2 * future[row + h]);
+  }
+  return Math.max(0, sum) / (origins * steps);
+}
+
+/** One penalty for the cross stage likewise; a signal is left out of it where it does not gain. */
+function chooseCross(folds: readonly Fold[], layout: Layout, penalties: readonly number[]): (number | null)[] {
+  const { signalCount, steps } = layout;
+  const p = layout.channelCount * layout.featureCount;
+  if (layout.channelCount === 1) return [null];
+  const alone: Float64Array[] = [];
+  const errors: Float64Array[][] = CROSS_PENALTIES.map(() => []);
+  for (const fold of folds) {
+    const own = ownMap(fold.learn, layout, penalties);
+    alone.push(signalErrors(mapError(fold.judge, layout, own), steps));
+    const system = crossSystem(fold.learn, layout, own);
+    CROSS_PENALTIES.forEach((penalty, k) => {
+      const map = system.right.slice();
+      solveCholesky(cholesky(system.gram(penalty), p), p, map, signalCount * steps);
+      for (let at = 0; at < map.length; at++) map[at] += own[at];
+      errors[k].push(signalErrors(mapError(fold.judge, layout, map), steps));
+    });
+  }
+  const common = leastIndex(errors.map((perFold) => geometric(perFold.map(total))));
+  return Array.from({ length: signalCount }, (_, i) => {
+    const without = geometric(alone.map((signals) => signals[i]));
+    const joined = geometric(errors[common].map((signals) => signals[i]));
+    return joined < without * (1 - CROSS_GAIN) ? CROSS_PENALTIES[common] : null;
+  });
+}
+
+/** (ny) mean over the steps. */
+function signalErrors(errors: Float64Array, steps: number): Float64Array {
+  const out = new Float64Array(errors.length / steps);
+  for (let k = 0; k < errors.length; k++) out[Math.floor(k / steps)] += errors[k] / steps;
+  return out;
+}
+
+function total(values: Float64Array): number {
+  return values.reduce((sum, value) => sum + value, 0);
+}
+
+function geometric(values: readonly number[]): number {
+  let sum = 0;
+  for (const value of values) sum += Math.log(Math.max(value, Number.MIN_VALUE));
+  return Math.exp(sum / values.length);
+}
+
+function leastIndex(values: readonly number[]): number {
+  let best = 0;
+  for (let k = 1; k < values.length; k++) if (values[k] < values[best]) best = k;
+  return best;
+}

@@ -1,0 +1,123 @@
+/**
+ * From a completed history to what the small model is made of: bank and penalties chosen by rolling origin, the map learned
+ * from the learning part, its directions found. One pass over the readings; all else is small algebra.
+ */
+import type { Learned } from '../quantise/quantise.ts';
+import { type Bank, designBank, featureCount, settlingTicks } from './bank.ts';
+import { type Partition, partition, usableBlocks } from './blocks.ts';
+import { findDirections } from './bottleneck.ts';
+import { type Choice, choose } from './choose.ts';
+import type { Filled } from './fill.ts';
+import { addMoments, pickMoments } from './moment-sets.ts';
+import { type Block, gatherMoments, type Moments } from './moments.ts';
+import { type Layout, twoStageMap } from './ridge.ts';
+
+/** Where and what to learn. Lengths in ticks from the start of the completed history. */
+export interface LearnInput {
+  readonly filled: Filled;
+  readonly signalCount: number;
+  readonly horizon: number;
+  readonly periodTicks: number;
+  readonly learnTicks: number;
+  readonly calibrateTicks: number;
+}
+
+/** What learning gave. */
+export interface LearnOutput {
+  readonly choice: Choice;
+  readonly learned: Learned;
+  /** Moments of the calibration part, of the chosen bank: they judge sizes. */
+  readonly calibration: Moments;
+  readonly usesLongGaps: boolean;
+}
+
+/** More states than this never paid within the byte limits met. */
+const MOST_DIRECTIONS = 96;
+
+/**
+ * Learns.
+ *
+ * shapes  as LearnInput
+ * units   standardised
+ * throws  TrainError 'fit' from the solves; RangeError if the learning part holds no origin
+ * source  file head
+ * cost    one pass over the readings, then O(p³)
+ */
+export function learn(input: LearnInput): LearnOutput {
+  const { filled, horizon, learnTicks, calibrateTicks } = input;
+  const widest = designBank(input.periodTicks, horizon, learnTicks);
+  const settle = Math.min(settlingTicks(widest), Math.floor(learnTicks / 8));
+  const cut = partition(learnTicks, calibrateTicks, settle, horizon, filled.inLongGap);
+  const layout = layoutOf(input, widest);
+  const { early, late, between } = gatherPartition(input, widest, cut);
+  const choice = choose([...early, ...late], widest, layout);
+  const steps = Array.from({ length: horizon }, (_, k) => k + 1);
+  const pick = (moments: Moments): Moments => pickMoments(moments, layout, choice.kept, steps);
+  const learning = pick(addMoments([...early, ...between]));
+  const calibration = pick(addMoments(late.length > 0 ? late : early.slice(-1)));
+  return {
+    choice,
+    learned: mapAndDirections(learning, { ...layout, featureCount: choice.kept.length }, choice),
+    calibration,
+    usesLongGaps: cut.usesLongGaps,
+  };
+}
+
+/**
+ * Learns once more from the first `ticks` ticks, with what was chosen before.
+ *
+ * shapes  as LearnInput
+ * units   standardised
+ * throws  as `learn`
+ * source  none
+ * cost    one pass over the readings and one fit
+ */
+export function learnAgain(input: LearnInput, choice: Choice, ticks: number): Learned {
+  const layout = layoutOf(input, choice.bank);
+  const settle = Math.min(settlingTicks(choice.bank), Math.floor(ticks / 8));
+  let blocks = usableBlocks(settle, ticks, input.horizon, input.filled.inLongGap);
+  if (blocks.length === 0) blocks = [{ fromIndex: Math.max(1, settle), toIndex: ticks - input.horizon }];
+  return mapAndDirections(addMoments(gather(input, choice.bank, blocks)), layout, choice);
+}
+
+function layoutOf(input: LearnInput, bank: Bank): Layout {
+  return {
+    channelCount: input.filled.values.length,
+    signalCount: input.signalCount,
+    featureCount: featureCount(bank),
+    steps: input.horizon,
+  };
+}
+
+function mapAndDirections(moments: Moments, layout: Layout, choice: Choice): Learned {
+  const map = twoStageMap(moments, layout, choice.ownPenalty, choice.crossPenalty);
+  const covariance = moments.features.map((sum) => sum / moments.origins);
+  return { covariance, map, layout, bottleneck: findDirections(covariance, map, layout, MOST_DIRECTIONS) };
+}
+
+function gather(input: LearnInput, bank: Bank, blocks: readonly Block[]): Moments[] {
+  const { filled, signalCount, horizon } = input;
+  return gatherMoments({ values: filled.values, signalCount, bank, horizon }, blocks);
+}
+
+/** Moments of each group that has origins, in the learning part and after it, and of what lies between groups. */
+function gatherPartition(
+  input: LearnInput,
+  bank: Bank,
+  cut: Partition,
+): { readonly early: Moments[]; readonly late: Moments[]; readonly between: Moments[] } {
+  const tagged = [
+    ...cut.groups.flatMap((blocks, group) => blocks.map((block) => ({ block, group }))),
+    ...cut.between.map((block) => ({ block, group: -1 })),
+  ].sort((a, b) => a.block.fromIndex - b.block.fromIndex);
+  const blocks = tagged.map(({ block }) => block);
+  const moments = gather(input, bank, blocks);
+  const of = (wanted: number): Moments[] => moments.filter((_, k) => tagged[k].group === wanted);
+  const joined = cut.groups.map((_, group) => of(group)).map((parts) => (parts.length > 0 ? addMoments(parts) : null));
+  const present = (parts: readonly (Moments | null)[]): Moments[] => parts.filter((part) => part !== null);
+  return {
+    early: present(joined.slice(0, cut.learnGroups)),
+    late: present(joined.slice(cut.learnGroups)),
+    between: of(-1),
+  };
+}

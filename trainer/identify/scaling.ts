@@ -1,0 +1,98 @@
+/**
+ * How each channel is brought to zero mean and unit variance, and the widest values folded in. Both come from the
+ * learning part alone. The range is robust: readings absurdly far from the bulk neither move the mean nor open the clip.
+ */
+import { TrainError } from '../errors.ts';
+import type { Series } from '../history/series.ts';
+
+/** One channel's scaling, in its unit. */
+export interface Scaling {
+  readonly mean: number;
+  /** Population standard deviation; 1 for a constant channel. */
+  readonly scale: number;
+  readonly clipLow: number;
+  readonly clipHigh: number;
+  readonly isConstant: boolean;
+}
+
+/** Readings beyond the 1st and 99th percentile by more than this many times their distance are not believed. */
+const BELIEVED_RANGES = 10;
+/** Share of the robust range added on each side before a reading is clipped. */
+const CLIP_SHARE = 0.75;
+const LEAST_READINGS = 16;
+
+/**
+ * Scalings of all channels.
+ *
+ * shapes  learnTicks the length of the learning part from the series' start; steps (nc) lattice steps; result (nc)
+ * units   the signals'
+ * throws  TrainError 'history' naming a channel without readings, or where every signal is constant
+ * source  own choice of robust range; the clip's share as measured to be wide enough on real records
+ * cost    O(nc T log T)
+ */
+export function findScalings(series: Series, learnTicks: number, steps: readonly number[]): Scaling[] {
+  const scalings = series.values.map((y, c) => {
+    const read = y.subarray(0, learnTicks).filter((value) => Number.isFinite(value));
+    if (read.length < LEAST_READINGS) throw tooFew(series, c, read.length, learnTicks);
+    return scalingOf(read, steps[c]);
+  });
+  if (scalings.slice(0, series.signalCount).every((scaling) => scaling.isConstant)) {
+    throw new TrainError(
+      'history',
+      `Every signal (${series.names.slice(0, series.signalCount).join(', ')}) keeps one value throughout the learning part; ` +
+        'expected at least one that moves. Check the columns, the resolution and the span of the history.',
+    );
+  }
+  return scalings;
+}
+
+function scalingOf(read: Float64Array, step: number): Scaling {
+  const sorted = read.slice().sort();
+  const [low, high] = believedRange(sorted);
+  let sum = 0;
+  let count = 0;
+  for (const value of read) {
+    if (value < low || value > high) continue;
+    sum += value;
+    count++;
+  }
+  const mean = sum / count;
+  let squares = 0;
+  for (const value of read) if (value >= low && value <= high) squares += (value - mean) * (value - mean);
+  const scale = Math.sqrt(squares / count);
+  // Rounding alone leaves a share of 1e-12 or so of the level.
+  const isConstant = !(scale > 1e-9 * Math.max(Math.abs(mean), step, Number.MIN_VALUE));
+  const range = isConstant ? Math.max(Math.abs(mean), 100 * step) : high - low;
+  return {
+    mean: isConstant ? low : mean,
+    scale: isConstant ? 1 : scale,
+    clipLow: low - CLIP_SHARE * range,
+    clipHigh: high + CLIP_SHARE * range,
+    isConstant,
+  };
+}
+
+/** Smallest and largest reading that is believed. */
+function believedRange(sorted: Float64Array): readonly [number, number] {
+  for (const tail of [0.01, 0.001]) {
+    const low = sorted[Math.floor(tail * (sorted.length - 1))];
+    const high = sorted[Math.ceil((1 - tail) * (sorted.length - 1))];
+    const reach = BELIEVED_RANGES * (high - low);
+    if (!(reach > 0)) continue;
+    return [
+      sorted.find((value) => value >= low - reach) ?? low,
+      sorted.findLast((value) => value <= high + reach) ?? high,
+    ];
+  }
+  return [sorted[0], sorted[sorted.length - 1]];
+}
+
+function tooFew(series: Series, channel: number, got: number, ticks: number): TrainError {
+  const role = channel < series.signalCount ? 'Signal' : 'Input';
+  return new TrainError(
+    'history',
+    `${role} ${series.names[channel]}: expected at least ${LEAST_READINGS} readings in the learning part of ${ticks} ticks, ` +
+      `got ${got}. Check its column in the history, or take it out of the site file.`,
+    { details: { channel: series.names[channel], got } },
+  );
+}
