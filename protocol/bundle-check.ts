@@ -3,6 +3,7 @@
  * one. A bundle that passes computes without reading past an array and without growing for ever.
  */
 import type { Bundle, BundleChannel } from './bundle.ts';
+import { toHex } from './digest.ts';
 import { ProtocolError } from './errors.ts';
 import { bundleSchemaHash } from './schema-hash.ts';
 import { checkTensor, dequantise, type TensorType } from './tensor.ts';
@@ -112,8 +113,8 @@ const checkJudge = (bundle: Bundle, signals: number): void => {
  */
 export const checkBundle = (bundle: Bundle): void => {
   const signals = checkChannels(bundle.channels);
-  const expected = Buffer.from(bundleSchemaHash(bundle)).toString('hex');
-  const got = Buffer.from(bundle.schema).toString('hex');
+  const expected = toHex(bundleSchemaHash(bundle));
+  const got = toHex(bundle.schema);
   if (expected !== got) refuse('schema', `expected ${expected} for these channels and this tick, got ${got}`);
   checkLinear(bundle, signals);
   checkSeasonal(bundle, signals);

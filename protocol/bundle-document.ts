@@ -2,11 +2,11 @@
  * A bundle to bytes and back. The bytes are what is sealed: the same bundle always gives the same bytes, and bytes that
  * are accepted encode to themselves again.
  */
-import { createHash } from 'node:crypto';
 import type { Bundle } from './bundle.ts';
 import { checkBundle } from './bundle-check.ts';
 import { bundleSchema } from './bundle-schema.ts';
 import { decode, encode } from './codec.ts';
+import { sha256 } from './digest.ts';
 import { ProtocolError } from './errors.ts';
 import { deepFreeze } from './freeze.ts';
 import { formatFault, listFaults, showValue } from './issue.ts';
@@ -72,5 +72,4 @@ export const decodeBundle = (document: Uint8Array): Bundle => {
 };
 
 /** The name of a bundle everywhere: SHA-256 of its document, whatever envelope it travels in; 32 bytes. */
-export const bundleDigest = (document: Uint8Array): Uint8Array =>
-  Uint8Array.from(createHash('sha256').update(document).digest());
+export const bundleDigest = (document: Uint8Array): Uint8Array => sha256(document);

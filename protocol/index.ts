@@ -1,7 +1,17 @@
 export type * from './bundle.ts';
 export { bundleDigest, decodeBundle, encodeBundle } from './bundle-document.ts';
 export { decode, encode } from './codec.ts';
+export { sha256, toHex } from './digest.ts';
 export { formatDuration, parseDuration } from './duration.ts';
+export {
+  ENVELOPE_MAGIC,
+  ENVELOPE_VERSION,
+  type Envelope,
+  type EnvelopeSignature,
+  MAX_SIGNATURES,
+  readEnvelope,
+  type SealNumbers,
+} from './envelope.ts';
 export * from './errors.ts';
 export * from './forecast.ts';
 export * from './forecasts.ts';

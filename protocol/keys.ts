@@ -2,7 +2,8 @@
  * Ed25519 keys (RFC 8032) as small JSON text, and the names keys go by in envelopes. Author keys seal bundles; rollout
  * keys sign orders; one never stands in for the other.
  */
-import { createHash, createPrivateKey, createPublicKey, type KeyObject, randomBytes, sign, verify } from 'node:crypto';
+import { createPrivateKey, createPublicKey, type KeyObject, randomBytes, sign, verify } from 'node:crypto';
+import { sha256, toHex } from './digest.ts';
 import { ProtocolError } from './errors.ts';
 import { MAX_KEY_FILE_BYTES } from './limits.ts';
 
@@ -63,8 +64,7 @@ export const createKeyPair = (seed: Uint8Array = randomBytes(KEY_BYTES), kind: K
 };
 
 /** The id a key goes by: the first 8 bytes of SHA-256 over the raw 32-byte public key. */
-export const keyIdOf = (publicKey: Uint8Array): Uint8Array =>
-  Uint8Array.from(createHash('sha256').update(publicKey).digest().subarray(0, KEY_ID_BYTES));
+export const keyIdOf = (publicKey: Uint8Array): Uint8Array => sha256(publicKey).slice(0, KEY_ID_BYTES);
 
 /** Signs bytes: 64 bytes, the same for the same key and message (RFC 8032 section 5.1.6). */
 export const signBytes = (key: KeyPair, message: Uint8Array): Uint8Array =>
@@ -80,10 +80,10 @@ export const verifyBytes = (publicKey: Uint8Array, message: Uint8Array, signatur
 export const formatKey = (key: PublicKey | KeyPair): string => {
   const text: Record<string, string> = {
     kind: key.kind,
-    id: Buffer.from(keyIdOf(key.publicKey)).toString('hex'),
-    public: Buffer.from(key.publicKey).toString('hex'),
+    id: toHex(keyIdOf(key.publicKey)),
+    public: toHex(key.publicKey),
   };
-  if ('privateKey' in key) text.private = Buffer.from(key.privateKey).toString('hex');
+  if ('privateKey' in key) text.private = toHex(key.privateKey);
   return `${JSON.stringify(text, null, 2)}\n`;
 };
 
@@ -131,7 +131,7 @@ export const parseKey = (text: string, fileName = 'key file'): PublicKey | KeyPa
     return refuse(fileName, `"kind": expected "author" or "rollout", got ${JSON.stringify(kind) ?? 'nothing'}`);
   }
   const publicKey = readHex(fields, 'public', fileName);
-  const id = Buffer.from(keyIdOf(publicKey)).toString('hex');
+  const id = toHex(keyIdOf(publicKey));
   if (fields.id !== undefined && fields.id !== id) {
     refuse(fileName, `"id": expected ${id} for this public key, got ${JSON.stringify(fields.id)}`);
   }

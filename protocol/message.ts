@@ -4,6 +4,7 @@
  */
 import { z } from 'zod';
 import { decode } from './codec.ts';
+import { toHex } from './digest.ts';
 import { ProtocolError } from './errors.ts';
 import { formatInstant, parseInstant } from './instant.ts';
 import { formatFault, listFaults, showValue } from './issue.ts';
@@ -70,7 +71,7 @@ export const writeHead = <K extends string>(kind: K, head: MessageHead) => ({
   kind,
   site: head.site,
   gateway: head.gateway,
-  bundle: head.bundle === null ? null : Buffer.from(head.bundle).toString('hex'),
+  bundle: head.bundle === null ? null : toHex(head.bundle),
   sequence: head.sequence,
   issued_at: formatInstant(head.issuedAtMs),
   valid_until: formatInstant(head.validUntilMs),

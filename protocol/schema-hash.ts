@@ -2,9 +2,9 @@
  * Whether a bundle was learned for the site it is loaded at: the same signals and inputs in the same order, with the same
  * units, aggregates and tick. The hash decides; the description tells a person why.
  */
-import { createHash } from 'node:crypto';
 import type { Bundle } from './bundle.ts';
 import { encode } from './codec.ts';
+import { sha256 } from './digest.ts';
 import { formatDuration } from './duration.ts';
 import type { Aggregate, Site } from './site.ts';
 
@@ -22,10 +22,7 @@ const channelsOf = (site: Site): readonly Channel[] => [
 
 const hashOf = (tickMs: number, channels: readonly Channel[]): Uint8Array => {
   const rows = channels.map(({ role, name, unit, aggregate }) => [role, name, unit, aggregate]);
-  const hash = createHash('sha256')
-    .update('stillwell schema v1\n')
-    .update(encode({ tickMs, channels: rows }));
-  return Uint8Array.from(hash.digest());
+  return sha256('stillwell schema v1\n', encode({ tickMs, channels: rows }));
 };
 
 /** SHA-256 over tick and, in order, role, name, unit and aggregate of every signal and input; 32 bytes. */
