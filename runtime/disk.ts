@@ -13,6 +13,7 @@ import {
   readFileSync,
   renameSync,
   rmSync,
+  statSync,
 } from 'node:fs';
 import { basename, dirname, join } from 'node:path';
 import { syncFolder, writeFully } from './files.ts';
@@ -32,6 +33,8 @@ export interface Disk {
   makeFolder(path: string): void;
   /** Null where there is no such file. */
   read(path: string): Uint8Array | null;
+  /** Bytes of a file, 0 where there is none. */
+  size(path: string): number;
   /** Names in a folder, sorted; none where there is no such folder. */
   list(folder: string): readonly string[];
   /** Creates or overwrites; not durable before sync. */
@@ -114,6 +117,7 @@ export const nodeDisk: Disk = {
       throw error;
     }
   },
+  size: (path) => statSync(path, { throwIfNoEntry: false })?.size ?? 0,
   list(folder) {
     try {
       return readdirSync(folder).sort();

@@ -1,0 +1,323 @@
+/**
+ * The gateway's memory on disk: the journal of the open segment, the checkpoint it starts from, and the spool of closed
+ * segments. A boundary writes the closed segment, then the checkpoint, then opens the next journal file; the checkpoint's
+ * replacement decides. A segment may be sent only after it, so that no number ever stands for two contents.
+ *
+ * A disk that fails (full, read-only, worn) never stops the forecasts: segments are held in memory, a few of them, and the
+ * whole boundary is tried again. A file that failed to sync is never trusted again.
+ */
+import { join } from 'node:path';
+import { SegmentWriter } from '@stillwell/protocol';
+import { type Disk, replaceOn, sweepParts } from '../disk.ts';
+import type { LateChange, OpenReadings } from '../ingest/align.ts';
+import type { Serving } from '../serving.ts';
+import { type Checkpoint, encodeCheckpoint } from './checkpoint.ts';
+import type { Spool } from './spool.ts';
+import { Wal } from './wal.ts';
+
+export interface JournalOptions {
+  readonly disk: Disk;
+  /** The data folder. */
+  readonly folder: string;
+  readonly site: string;
+  readonly gateway: string;
+  /** 8 random bytes. */
+  readonly stream: Uint8Array;
+  readonly spool: Spool;
+  /** Ticks after which a segment closes. */
+  readonly segmentTicks: number;
+  /** Ticks whose journal files are kept to warm new bundles with. */
+  readonly keepTicks: number;
+  /** Signals and inputs of the site. */
+  readonly channelCount: number;
+}
+
+/** Where a journal goes on. */
+export interface JournalPosition {
+  readonly number: number;
+  readonly sinceKeyed: number;
+}
+
+/** Counted since the start. */
+export interface JournalCounts {
+  readonly closed: number;
+  readonly shedSegments: number;
+  readonly shedBytes: number;
+  /** Segments lost since the disk took nothing for too long. */
+  readonly lost: number;
+}
+
+/** A segment closes by size well before the most that one may hold. */
+const SEGMENT_BYTES = 96 * 1024;
+const MOST_CORRECTIONS = 8192;
+/** A self-contained start costs as much as a few segments: one a week of hourly segments … */
+const KEYED_EVERY = 168;
+/** … and one a day while nobody takes them, since then the oldest may have to go. */
+const KEYED_EVERY_WAITING = 24;
+const HELD_IN_MEMORY = 8;
+
+/** Path of the checkpoint in a data folder. */
+export function checkpointPath(folder: string): string {
+  return join(folder, 'checkpoint');
+}
+
+/** Folder of the journal files in a data folder. */
+export function journalFolder(folder: string): string {
+  return join(folder, 'journal');
+}
+
+/** Path of the journal file of a segment. */
+export function journalPath(folder: string, number: number): string {
+  return join(journalFolder(folder), `${String(number).padStart(10, '0')}.swj`);
+}
+
+export class Journal {
+  readonly #options: JournalOptions;
+  readonly #streamName: string;
+  readonly #counts = { closed: 0, shedSegments: 0, shedBytes: 0, lost: 0 };
+  /** Journal files that still hold wanted ticks, oldest first. */
+  readonly #kept: { number: number; ticks: number }[] = [];
+  #unsaved: { number: number; bytes: Uint8Array }[] = [];
+  #number: number;
+  #sinceKeyed: number;
+  #startState: Uint8Array = new Uint8Array(0);
+  #writer: SegmentWriter | null = null;
+  #corrections = 0;
+  #mustKey = false;
+  #wal: Wal | null = null;
+  #fault: string | null = null;
+
+  constructor(options: JournalOptions, position: JournalPosition) {
+    this.#options = options;
+    this.#streamName = Buffer.from(options.stream).toString('hex');
+    this.#number = position.number;
+    this.#sinceKeyed = position.sinceKeyed;
+    options.disk.makeFolder(journalFolder(options.folder));
+    sweepParts(options.disk, options.folder);
+  }
+
+  get counts(): JournalCounts {
+    return this.#counts;
+  }
+
+  /** Number of the open segment; smaller ones may be sent. */
+  get number(): number {
+    return this.#number;
+  }
+
+  get ticks(): number {
+    return this.#writer?.ticks ?? 0;
+  }
+
+  /** Why nothing is being kept at present; null when all is well. */
+  get fault(): string | null {
+    return this.#fault;
+  }
+
+  /** Whether the open segment should close now. */
+  get isDue(): boolean {
+    const writer = this.#writer;
+    if (writer === null) return false;
+    const { ticks, bytesSoFar, isFull } = writer;
+    if (ticks >= this.#options.segmentTicks || bytesSoFar >= SEGMENT_BYTES || isFull) return true;
+    return this.#corrections >= MOST_CORRECTIONS;
+  }
+
+  /** Goes on with the segment a checkpoint started; the caller replays its journal by `coded` and `changed`. */
+  resume(startState: Uint8Array, keepBytes: number, kept: readonly { number: number; ticks: number }[]): void {
+    this.#startState = startState;
+    this.#kept.push(...kept);
+    this.#guard(() => this.#openWal(keepBytes));
+  }
+
+  /** Starts the first segment of this journal, with the state in full. */
+  begin(serving: Serving): void {
+    this.#sinceKeyed = 0;
+    this.#startState = serving.savedState();
+    this.#persist(serving);
+  }
+
+  /** Writes the tick down before the filter sees it. */
+  tick(tick: number, values: Float64Array): void {
+    this.#guard(() => this.#wal?.tick(tick, values));
+  }
+
+  /** Codes the tick that `serving` has just folded in. */
+  coded(serving: Serving): void {
+    this.#writer ??= this.#openWriter(serving, serving.tick);
+    this.#writer.push(serving.lattice, serving.predicted);
+  }
+
+  /** Writes a late change down and codes it. */
+  change(change: LateChange, latticeIndex: number, serving: Serving): void {
+    this.#guard(() => this.#wal?.change(change));
+    this.changed(change, latticeIndex, serving);
+  }
+
+  /** Codes a late change. */
+  changed(change: LateChange, latticeIndex: number, serving: Serving): void {
+    if (serving.tick < 0 || !Number.isInteger(latticeIndex)) return;
+    this.#writer ??= this.#openWriter(serving, serving.tick + 1);
+    this.#writer.correct(change.tick, change.channel, latticeIndex);
+    this.#corrections++;
+  }
+
+  /** Closes the segment in `before`'s state and opens the next in `after`'s, the same one or another bundle's. */
+  turnOver(before: Serving, after: Serving): void {
+    const hasClosed = this.#finish(before);
+    if (before !== after || this.#mustKey || (hasClosed && this.#isKeyDue())) this.#sinceKeyed = 0;
+    else if (hasClosed) this.#sinceKeyed++;
+    this.#mustKey = false;
+    this.#startState = after.savedState();
+    this.#persist(after);
+  }
+
+  /** Makes the journal durable, off the main thread. */
+  async syncSoon(): Promise<void> {
+    try {
+      await this.#wal?.syncSoon();
+    } catch (error) {
+      this.#fail(error);
+    }
+  }
+
+  /** Whether anything waits for a sync. */
+  get isDirty(): boolean {
+    return this.#wal?.isDirty ?? false;
+  }
+
+  /** Clean stop: the open ticks' readings go behind the last tick. */
+  stop(open: OpenReadings): void {
+    this.#guard(() => {
+      this.#wal?.open(open);
+      this.#wal?.sync();
+      this.#wal?.close();
+      this.#wal = null;
+    });
+  }
+
+  #openWriter(serving: Serving, firstTick: number): SegmentWriter {
+    const { site, gateway, stream } = this.#options;
+    return new SegmentWriter({
+      site,
+      gateway,
+      stream,
+      number: this.#number,
+      bundle: serving.checked.digest,
+      firstTick,
+      channelCount: serving.model.channelCount,
+      signalCount: serving.model.signalCount,
+      residualScaleSteps: serving.residualScaleSteps(),
+      startState: this.#startState,
+      keyed: this.#sinceKeyed === 0,
+    });
+  }
+
+  /** Whether there was a segment to close. */
+  #finish(serving: Serving): boolean {
+    const writer = this.#writer;
+    this.#writer = null;
+    this.#corrections = 0;
+    if (writer === null) return false;
+    this.#kept.push({ number: this.#number, ticks: writer.ticks });
+    this.#counts.closed++;
+    try {
+      this.#unsaved.push({ number: this.#number, bytes: writer.finish(serving.savedState()) });
+    } catch {
+      // Larger than a segment may be, which closing by size prevents; the next one must then stand alone.
+      this.#lose();
+    }
+    this.#number++;
+    if (this.#unsaved.length > HELD_IN_MEMORY) {
+      this.#unsaved.shift();
+      this.#lose();
+    }
+    return true;
+  }
+
+  #lose(): void {
+    this.#counts.lost++;
+    this.#mustKey = true;
+  }
+
+  #isKeyDue(): boolean {
+    const next = this.#sinceKeyed + 1;
+    return (
+      next >= KEYED_EVERY || (next >= KEYED_EVERY_WAITING && this.#options.spool.waiting.length >= KEYED_EVERY_WAITING)
+    );
+  }
+
+  #persist(serving: Serving): void {
+    const { disk, folder, spool, stream } = this.#options;
+    if (this.#fault === null) this.#guard(() => this.#wal?.sync());
+    this.#closeWal();
+    this.#fault = null;
+    this.#guard(() => {
+      for (const { number, bytes } of this.#unsaved) spool.put(this.#streamName, number, bytes);
+      const checkpoint: Checkpoint = {
+        stream,
+        number: this.#number,
+        sinceKeyed: this.#sinceKeyed,
+        bundle: serving.checked.digest,
+        state: this.#startState,
+        bounds: serving.savedBounds(),
+      };
+      replaceOn(disk, checkpointPath(folder), encodeCheckpoint(checkpoint));
+      this.#unsaved = [];
+      this.#openWal(0);
+      this.#prune();
+      this.#shed();
+    });
+  }
+
+  #shed(): void {
+    const { spool } = this.#options;
+    const shed = spool.shed();
+    this.#counts.shedSegments += shed.segments;
+    this.#counts.shedBytes += shed.bytes;
+    // The open segment hangs on what is gone; the one after it starts afresh.
+    if (shed.segments > 0 && spool.waiting.length === 0) this.#mustKey = true;
+  }
+
+  #openWal(keepBytes: number): void {
+    const { disk, folder, stream, channelCount } = this.#options;
+    const head = { channelCount, stream, number: this.#number };
+    this.#wal = new Wal(disk, journalPath(folder, this.#number), head, keepBytes);
+    disk.syncFolder(journalFolder(folder));
+  }
+
+  /** Removes journal files whose ticks are in segments and no longer wanted for warming. */
+  #prune(): void {
+    const { disk, folder, keepTicks } = this.#options;
+    let ticks = 0;
+    let from = this.#kept.length;
+    while (from > 0 && ticks < keepTicks) ticks += this.#kept[--from]!.ticks;
+    for (const { number } of this.#kept.splice(0, from)) disk.remove(journalPath(folder, number));
+  }
+
+  #closeWal(): void {
+    const wal = this.#wal;
+    this.#wal = null;
+    if (wal) this.#guard(() => wal.close());
+  }
+
+  /** Disk errors are kept, never thrown: forecasts go on without a record. */
+  #guard(work: () => void): void {
+    try {
+      work();
+    } catch (error) {
+      this.#fail(error);
+    }
+  }
+
+  #fail(error: unknown): void {
+    this.#fault ??= error instanceof Error ? error.message : String(error);
+    const wal = this.#wal;
+    this.#wal = null;
+    try {
+      wal?.close();
+    } catch {
+      // Already failed; there is nothing more to lose with this file.
+    }
+  }
+}

@@ -1,0 +1,120 @@
+/**
+ * One bundle at work: its model, the filter's state and bounds, and the forecast of the present tick. Steps are the same
+ * whether ticks come live, from the journal after a restart, or from the recent ticks that warm a new bundle.
+ */
+import { type Bundle, latticeIndex, latticeValue, MAX_INDEX } from '@stillwell/protocol';
+import {
+  type Bounds,
+  createBounds,
+  createState,
+  type FilterState,
+  forecastPath,
+  intervalOf,
+  type LinearModel,
+  predictNext,
+  restoreBounds,
+  restoreState,
+  saveBounds,
+  saveState,
+  trackBounds,
+  update,
+} from '@stillwell/runtime/filter';
+
+/** A bundle that passed every check. */
+export interface CheckedBundle {
+  readonly bundle: Bundle;
+  readonly model: LinearModel;
+  /** SHA-256 of the document. */
+  readonly digest: Uint8Array;
+  readonly epoch: number;
+  readonly sequence: number;
+}
+
+export class Serving {
+  readonly checked: CheckedBundle;
+  readonly model: LinearModel;
+  state: FilterState;
+  bounds: Bounds;
+  /** (nc) the tick's readings as lattice indices, NaN missing. */
+  readonly lattice: Float64Array;
+  /** (nc) the one-step forecasts made before the tick, in lattice steps. */
+  readonly predicted: Float64Array;
+  /** (ny × H) in units. */
+  readonly median: Float64Array;
+  readonly lower: Float64Array;
+  readonly upper: Float64Array;
+  /** (nc) 1 where the tick's reading lay outside what the bundle folds in. */
+  readonly isOutside: Uint8Array;
+  readonly #values: Float64Array;
+
+  constructor(checked: CheckedBundle) {
+    const { model } = checked;
+    this.checked = checked;
+    this.model = model;
+    this.state = createState(model);
+    this.bounds = createBounds(model);
+    this.lattice = new Float64Array(model.channelCount);
+    this.predicted = new Float64Array(model.channelCount);
+    this.#values = new Float64Array(model.channelCount);
+    this.isOutside = new Uint8Array(model.channelCount);
+    this.median = new Float64Array(model.signalCount * model.horizon);
+    this.lower = new Float64Array(this.median.length);
+    this.upper = new Float64Array(this.median.length);
+  }
+
+  /** Last tick folded in; -1 before the first. */
+  get tick(): number {
+    return this.state.tick;
+  }
+
+  get isWarming(): boolean {
+    return this.bounds.warmed < this.model.warmupTicks;
+  }
+
+  /** Expected size of the one-step residual in lattice steps (nc): what coder and decoder of segments start from. */
+  residualScaleSteps(): Float64Array {
+    const { residualScale, scale, latticeStep, channelCount } = this.model;
+    const steps = new Float64Array(channelCount);
+    for (let c = 0; c < channelCount; c++) steps[c] = (residualScale[c]! * scale[c]!) / latticeStep[c]!;
+    return steps;
+  }
+
+  /** Folds one tick in: readings onto the lattice, forecast before, update, path, bounds. `readings` (nc) in units. */
+  step(tick: number, readings: Float64Array): void {
+    const { model, lattice, predicted, state } = this;
+    predictNext(model, state, predicted);
+    for (let c = 0; c < model.channelCount; c++) {
+      const step = model.latticeStep[c]!;
+      const offset = model.latticeOffset[c]!;
+      predicted[c] = (predicted[c]! - offset) / step;
+      const index = latticeIndex(readings[c]!, step, offset);
+      lattice[c] = Math.abs(index) <= MAX_INDEX ? index : Number.NaN;
+      this.#values[c] = latticeValue(lattice[c]!, step, offset);
+      this.isOutside[c] = this.#values[c]! < model.clipLow[c]! || this.#values[c]! > model.clipHigh[c]! ? 1 : 0;
+    }
+    update(model, state, tick, this.#values);
+    forecastPath(model, state, this.median);
+    trackBounds(model, this.bounds, state, this.median);
+  }
+
+  /** Brings lower and upper to the present path. */
+  computeBounds(): void {
+    intervalOf(this.model, this.bounds, this.state, this.median, this.lower, this.upper);
+  }
+
+  /** Empty before the first tick: the desk then starts as we did. */
+  savedState(): Uint8Array {
+    return this.state.tick < 0 ? new Uint8Array(0) : saveState(this.model, this.state);
+  }
+
+  savedBounds(): Uint8Array {
+    return saveBounds(this.model, this.bounds);
+  }
+
+  /** throws  FilterError 'snapshot' when they are another model's or damaged */
+  restore(state: Uint8Array, bounds: Uint8Array): void {
+    this.state = state.length === 0 ? createState(this.model) : restoreState(this.model, state);
+    this.bounds = restoreBounds(this.model, bounds);
+    if (this.state.tick >= 0) forecastPath(this.model, this.state, this.median);
+  }
+}
