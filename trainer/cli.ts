@@ -5,12 +5,26 @@
  */
 import { ProtocolError } from '@stillwell/protocol';
 import { Command, CommanderError } from 'commander';
+import { deskCommand } from './commands/desk.ts';
 import { keysCommand } from './commands/keys.ts';
+import { rollCommand } from './commands/roll.ts';
 import { sealCommand } from './commands/seal.ts';
 import { showCommand } from './commands/show.ts';
+import { siteCommand } from './commands/site.ts';
+import { surveyCommand } from './commands/survey.ts';
+import { watchCommand } from './commands/watch.ts';
 import { TrainError } from './errors.ts';
 
-const commands: readonly (() => Command)[] = [keysCommand, sealCommand, showCommand];
+const commands: readonly (() => Command)[] = [
+  keysCommand,
+  sealCommand,
+  showCommand,
+  siteCommand,
+  surveyCommand,
+  rollCommand,
+  watchCommand,
+  deskCommand,
+];
 
 const program = new Command('stillwell')
   .description('Learns predictive-state models from site histories, seals them, rolls them out and collects residuals.')

@@ -19,7 +19,8 @@ export function bandPlot(
   const rows = Array.from({ length: height }, () => Array.from({ length: columns }, () => ' '));
   for (let column = 0; column < columns; column++) {
     // The last column always shows the last step.
-    const step = columns === 1 ? path.median.length - 1 : Math.round((column * (path.median.length - 1)) / (columns - 1));
+    const step =
+      columns === 1 ? path.median.length - 1 : Math.round((column * (path.median.length - 1)) / (columns - 1));
     const [lower, median, upper] = [path.lower[step]!, path.median[step]!, path.upper[step]!];
     if (!Number.isFinite(median)) continue;
     for (let row = rowOf(lower); row <= rowOf(upper); row++) rows[row]![column] = '░';

@@ -145,8 +145,8 @@ export class Collector {
   async #send(names: readonly SegmentName[]): Promise<void> {
     const { site, gateway, stream } = names[0]!;
     const segments = names.map(({ number, hash }) => ({ number, hash }));
-    const payload = receiptMessage({ site, gateway, stream: Uint8Array.from(Buffer.from(stream, 'hex')), segments });
     try {
+      const payload = receiptMessage({ site, gateway, stream: Uint8Array.from(Buffer.from(stream, 'hex')), segments });
       await this.#options.publish(topicsOf(this.#options.root, site).receipts, payload);
       this.#tell({ event: 'receipt', site, gateway, segments: segments.length });
     } catch (error) {

@@ -3,7 +3,7 @@
  * may be receipted, since a receipt makes the gateway delete its copy. Decoding is a later step of its own (chain.ts):
  * a segment is safe as soon as its bytes are, whether or not they can be read yet.
  */
-import { readSegmentHead, segmentHash } from '@stillwell/protocol';
+import { isName, NAME_RULE, readSegmentHead, segmentHash } from '@stillwell/protocol';
 import type { Transaction } from 'kysely';
 import type { Store } from './store/open.ts';
 import { toBytes } from './store/open.ts';
@@ -30,7 +30,8 @@ export interface SegmentName {
 /**
  * stored    new, committed
  * copy      the same bytes as a kept one, counted
- * conflict  same number, other bytes: committed aside and flagged; receipted too, since it is safe and will not change
+ * conflict  same number, other bytes: committed aside and flagged; `name` carries the hash of the kept one, so that the
+ *           receipt tells the gateway that the desk holds something else under this number
  * refused   damaged or of another site: counted, never receipted
  */
 export type Outcome =
@@ -85,6 +86,12 @@ function check(arrival: Arrival): Checked | Refusal {
         message: `segment of site "${head.site}" came on the topic of site "${arrival.site}"; see which client may publish there`,
       };
     }
+    if (!isName(head.gateway)) {
+      return {
+        cause: 'gateway',
+        message: `segment of a gateway named ${JSON.stringify(head.gateway)}: expected ${NAME_RULE}`,
+      };
+    }
     const stream = Buffer.from(head.stream).toString('hex');
     const { site, gateway, number, firstTick, ticks } = head;
     const name = { site, gateway, stream, number, hash: segmentHash(arrival.bytes) };
@@ -120,7 +127,7 @@ async function keep(db: Transaction<Tables>, arrival: Arrival, segment: Checked)
       .values(row)
       .onConflict((conflict) => conflict.doNothing())
       .execute();
-    return { kind: 'conflict', ...said };
+    return { kind: 'conflict', ...said, name: { ...segment.name, hash: toBytes(kept.hash) } };
   }
   await db.insertInto('segments').values(newRow(segment, arrival)).execute();
   return { kind: 'stored', ...said };

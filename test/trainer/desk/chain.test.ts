@@ -12,6 +12,7 @@ import { openStore, type Store } from '../../../trainer/desk/store/open.ts';
 import { testFolder } from '../../support/folder.ts';
 import { syntheticReadings } from '../../support/models.ts';
 import { SegmentMaker, sealableBundle } from '../../support/segment-maker.ts';
+import { shelfFolder } from './shelf-folder.ts';
 
 const SITE = 'pump-7';
 const first = sealableBundle({ site: SITE, seed: 1 });
@@ -38,13 +39,10 @@ function madeUp(): SegmentMaker {
 
 async function openDesk(folder: string, bundles: readonly Uint8Array[] = [first.document, second.document]) {
   const store = await openStore(folder);
-  const shelfFolder = testFolder();
-  bundles.forEach((document, i) => {
-    writeFileSync(join(shelfFolder, `${i}.swc`), document);
-  });
-  const shelf = new Shelf(store, shelfFolder);
+  const bundleFolder = shelfFolder(bundles);
+  const shelf = new Shelf(store, bundleFolder);
   await shelf.refresh();
-  return { store, shelf, shelfFolder, chain: new Chain(store, shelf) };
+  return { store, shelf, bundleFolder, chain: new Chain(store, shelf) };
 }
 
 async function deliver(desk: { store: Store; chain: Chain }, segments: readonly Uint8Array[]) {
@@ -147,7 +145,7 @@ test('a segment of an unknown bundle is kept and decoded as soon as the bundle i
   expect(outcomes.every((one) => one.kind === 'stored')).toBe(true);
   expect(events.filter((event) => event.reason === 'bundle').map((event) => event.number)).toEqual([4, 5]);
   expect((await readStatus(desk.store))[0]).toMatchObject({ waitingForBundle: 2, waitingForPredecessor: 0 });
-  writeFileSync(join(desk.shelfFolder, 'later.swc'), second.document);
+  writeFileSync(join(desk.bundleFolder, 'later.swc'), second.document);
   const { added } = await desk.shelf.refresh();
   const decoded = await desk.chain.followAll(added);
   expect(decoded.map((event) => `${event.number} ${event.kind}`)).toEqual(['4 decoded', '5 decoded']);

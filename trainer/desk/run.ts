@@ -1,0 +1,126 @@
+/**
+ * One desk process, wired up: store, bundle folder, broker. Runs until it is told to stop; what it has committed by then
+ * stays, what it has not the gateways still have.
+ */
+import { existsSync, statSync } from 'node:fs';
+import { topicsOf } from '@stillwell/protocol';
+import type { Connection } from '@stillwell/runtime/mqtt';
+import { brokerError, clientIdFor, connectBroker } from '../broker.ts';
+import { TrainError } from '../errors.ts';
+import { Collector, type DeskEvent } from './collect.ts';
+import { Shelf } from './shelf.ts';
+import { openStore, readMeta, type Store, writeMeta } from './store/open.ts';
+
+/** What a desk tells, with its own comings and goings. */
+export type RunEvent = DeskEvent | { readonly event: 'connection'; readonly state: string; readonly detail: string };
+
+export interface DeskOptions {
+  readonly data: string;
+  readonly broker: string;
+  /** Folder of sealed bundles; null: only those already in the store. */
+  readonly bundles: string | null;
+  readonly root: string;
+  readonly onEvent: (event: RunEvent) => void;
+  readonly bundleCheckMs?: number;
+  readonly connectTimeoutMs?: number;
+}
+
+/** A desk at work. */
+export interface RunningDesk {
+  readonly store: Store;
+  readonly collector: Collector;
+  /** Takes in what has arrived, then closes store and connection. */
+  stop(): Promise<void>;
+}
+
+/** Seconds the broker keeps what arrives while the desk is away; beyond, the gateways send again by themselves. */
+const SESSION_SECONDS = 3600;
+const BUNDLE_CHECK_MS = 2000;
+
+/**
+ * Starts a desk.
+ *
+ * throws  TrainError 'file' for a bundle folder that is none, 'archive' for the store, 'broker' when it cannot connect
+ */
+export async function startDesk(options: DeskOptions): Promise<RunningDesk> {
+  const { bundles, bundleCheckMs = BUNDLE_CHECK_MS } = options;
+  if (bundles !== null && !(existsSync(bundles) && statSync(bundles).isDirectory())) {
+    throw new TrainError('file', `--bundles ${bundles}: expected a folder of sealed bundles (.swb), found none`);
+  }
+  const store = await openStore(options.data);
+  try {
+    const shelf = new Shelf(store, bundles);
+    const link = await openLink(options, store, shelf);
+    const timer = setInterval(() => void link.collector.refresh(), bundleCheckMs);
+    return {
+      store,
+      collector: link.collector,
+      stop: async () => {
+        clearInterval(timer);
+        await link.collector.settle();
+        await link.connection.end();
+        await store.close();
+      },
+    };
+  } catch (error) {
+    await store.close();
+    throw error;
+  }
+}
+
+async function openLink(options: DeskOptions, store: Store, shelf: Shelf) {
+  const { root, onEvent } = options;
+  let connection: Connection | null = null;
+  const collector = new Collector({
+    store,
+    shelf,
+    root,
+    onEvent,
+    publish: (topic, payload) =>
+      connection === null
+        ? Promise.reject(new Error('not connected yet'))
+        : connection.publish({ topic, payload, qos: 1, retain: false }),
+  });
+  await collector.refresh(true);
+  connection = await connectBroker({
+    url: options.broker,
+    clientId: await ownClientId(store),
+    sessionExpirySeconds: SESSION_SECONDS,
+    ...(options.connectTimeoutMs === undefined ? {} : { connectTimeoutMs: options.connectTimeoutMs }),
+    onMessage: (topic, payload) => void collector.offer(topic, payload),
+    onState: (event) => onEvent({ event: 'connection', ...connectionText(event) }),
+  });
+  // MQTT 5 lets several desks share one fleet; 3.1.1 knows no shared subscription.
+  const filter = topicsOf(root, '+').segments;
+  try {
+    await connection.subscribe([connection.protocol === 5 ? `$share/desk/${filter}` : filter]);
+  } catch (cause) {
+    await connection.end(true);
+    throw brokerError(cause);
+  }
+  return { connection, collector };
+}
+
+/** Kept in the store: the broker then holds back what arrives while this desk restarts. */
+async function ownClientId(store: Store): Promise<string> {
+  const kept = await readMeta(store.db, 'client-id');
+  if (kept !== null) return kept;
+  const made = clientIdFor('desk');
+  await writeMeta(store.db, 'client-id', made);
+  return made;
+}
+
+function connectionText(event: Parameters<NonNullable<Parameters<typeof connectBroker>[0]['onState']>>[0]) {
+  switch (event.kind) {
+    case 'connected':
+      return { state: event.kind, detail: `MQTT ${event.protocol === 5 ? '5' : '3.1.1'}` };
+    case 'lost':
+      return { state: event.kind, detail: `${event.reason}; next attempt in ${(event.retryMs / 1000).toFixed(1)} s` };
+    case 'refused-subscription':
+      return { state: event.kind, detail: `${event.filter}: ${event.reason}` };
+    case 'taken-over':
+      return { state: event.kind, detail: `by another client, ${event.count} times` };
+    case 'stopped':
+      return { state: event.kind, detail: event.reason };
+  }
+}

@@ -1,0 +1,70 @@
+/** Follows the messages of one site and keeps the newest of each kind. */
+import {
+  type ForecastMessage,
+  type HealthMessage,
+  parseForecastMessage,
+  parseHealthMessage,
+  parseStateMessage,
+  parseTopic,
+  type StateMessage,
+  topicsOf,
+} from '@stillwell/protocol';
+import { brokerError, clientIdFor, connectBroker } from '../broker.ts';
+import type { WatchedSite } from './watch-view.ts';
+
+export interface WatchOptions {
+  readonly broker: string;
+  readonly root: string;
+  readonly site: string;
+  /** Called after every message taken in; `signal` where it was a forecast. */
+  readonly onChange: (site: WatchedSite, signal: string | null) => void;
+  /** A message that could not be read, or a change of the connection. */
+  readonly onTrouble: (text: string) => void;
+  readonly connectTimeoutMs?: number;
+}
+
+/**
+ * Subscribes and follows until `stop`.
+ *
+ * throws  TrainError 'broker' when it cannot connect or subscribe
+ */
+export async function followSite(options: WatchOptions): Promise<{ stop(): Promise<void> }> {
+  const topics = topicsOf(options.root, options.site);
+  const forecasts = new Map<string, ForecastMessage>();
+  let state: StateMessage | null = null;
+  let health: HealthMessage | null = null;
+  const take = (topic: string, payload: Uint8Array): void => {
+    const parsed = parseTopic(options.root, topic);
+    let signal: string | null = null;
+    try {
+      if (parsed?.kind === 'forecast') {
+        const forecast = parseForecastMessage(payload);
+        signal = forecast.signal;
+        forecasts.set(signal, forecast);
+      } else if (parsed?.kind === 'state') state = parseStateMessage(payload);
+      else if (parsed?.kind === 'health') health = parseHealthMessage(payload);
+      else return;
+    } catch (error) {
+      options.onTrouble(`${topic}: ${(error as Error).message}`);
+      return;
+    }
+    options.onChange({ site: options.site, forecasts, state, health }, signal);
+  };
+  const connection = await connectBroker({
+    url: options.broker,
+    clientId: clientIdFor('watch'),
+    onMessage: take,
+    ...(options.connectTimeoutMs === undefined ? {} : { connectTimeoutMs: options.connectTimeoutMs }),
+    onState: (event) => {
+      if (event.kind === 'lost') options.onTrouble(`broker lost: ${event.reason}; trying again`);
+    },
+  });
+  try {
+    // The state first: with it the first forecast already shows the value now.
+    for (const filter of [topics.health, topics.state, topics.forecast('+')]) await connection.subscribe([filter]);
+  } catch (cause) {
+    await connection.end(true);
+    throw brokerError(cause);
+  }
+  return { stop: () => connection.end() };
+}
