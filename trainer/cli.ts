@@ -30,13 +30,21 @@ const program = new Command('stillwell')
   .description('Learns predictive-state models from site histories, seals them, rolls them out and collects residuals.')
   .version('0.1.0')
   .showHelpAfterError('(add --help for an example)')
+  .enablePositionalOptions()
   .exitOverride();
-for (const command of commands) program.addCommand(command().exitOverride());
+for (const command of commands) program.addCommand(adopt(command(), program));
 
 try {
   await program.parseAsync();
 } catch (error) {
   process.exitCode = report(error);
+}
+
+/** Gives a command, and those below it, the program's own ways of parsing and refusing. */
+function adopt(command: Command, parent: Command): Command {
+  command.copyInheritedSettings(parent);
+  for (const below of command.commands) adopt(below, command);
+  return command;
 }
 
 /** One line to standard error; 2 where the person can mend it, 1 where we must. */

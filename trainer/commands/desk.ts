@@ -17,8 +17,7 @@ export function deskCommand(): Command {
     .requiredOption('--data <dir>', 'data folder of the desk')
     .option('--json', 'as JSON', false)
     .addHelpText('after', '\nExample:\n  stillwell desk status --data desk-data')
-    .action(showStatus)
-    .exitOverride();
+    .action(showStatus);
   return new Command('desk')
     .description('Collects segments, answers with receipts, and keeps the exact readings. Runs until Ctrl-C.')
     .option('--data <dir>', 'data folder; one desk at a time')
@@ -64,9 +63,7 @@ async function runDesk(options: DeskCommandOptions, command: Command): Promise<v
   await desk.stop();
 }
 
-async function showStatus(_: unknown, command: Command): Promise<void> {
-  // Both this command and its parent know --data and --json; whichever took the value counts.
-  const options = command.optsWithGlobals<{ data: string; json: boolean }>();
+async function showStatus(options: { readonly data: string; readonly json: boolean }): Promise<void> {
   const [{ openArchive }, { readStatus }, { statusText }] = await Promise.all([
     import('../desk/store/open.ts'),
     import('../desk/status.ts'),

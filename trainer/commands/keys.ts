@@ -31,8 +31,8 @@ export function keysCommand(): Command {
     .action(showKey);
   return new Command('keys')
     .description('Makes and shows keys.')
-    .addCommand(make.exitOverride())
-    .addCommand(show.exitOverride())
+    .addCommand(make)
+    .addCommand(show)
     .addHelpText('after', '\nExample:\n  stillwell keys new --kind author --out author.key');
 }
 

@@ -88,7 +88,10 @@ async function openLink(options: DeskOptions, store: Store, shelf: Shelf) {
     sessionExpirySeconds: SESSION_SECONDS,
     ...(options.connectTimeoutMs === undefined ? {} : { connectTimeoutMs: options.connectTimeoutMs }),
     onMessage: (topic, payload) => void collector.offer(topic, payload),
-    onState: (event) => onEvent({ event: 'connection', ...connectionText(event) }),
+    // Until the first connect the refusal itself tells what is wrong.
+    onState: (event) => {
+      if (connection !== null || event.kind === 'connected') onEvent({ event: 'connection', ...connectionText(event) });
+    },
   });
   // MQTT 5 lets several desks share one fleet; 3.1.1 knows no shared subscription.
   const filter = topicsOf(root, '+').segments;
