@@ -9,7 +9,7 @@
 const RECIPROCAL_TOLERANCE = 1e-9;
 
 /**
- * Nearest lattice index of a reading.
+ * Nearest lattice index of a reading; nought is never -0.
  *
  * units   value, step and offset in the channel's unit; step > 0; NaN stays NaN
  * throws  nothing; the caller has checked the lattice
@@ -18,7 +18,7 @@ const RECIPROCAL_TOLERANCE = 1e-9;
 export function latticeIndex(value: number, step: number, offset: number): number {
   const reciprocal = Math.round(1 / step);
   const raw = value - offset;
-  return Math.round(isReciprocal(step, reciprocal) ? raw * reciprocal : raw / step);
+  return Math.round(isReciprocal(step, reciprocal) ? raw * reciprocal : raw / step) + 0;
 }
 
 /**

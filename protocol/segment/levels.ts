@@ -1,14 +1,18 @@
 /**
- * Counts of what followed what, for channels that know only a few levels (a pump on or off, a valve in nine places).
- * As soon as a channel shows more than MAX_LEVELS levels the table gives up for the rest of the segment.
+ * Counts of what followed what, for channels that come back to a few levels (a pump on or off, a valve in nine places, a
+ * flow that is nought at rest). Holds MAX_LEVELS values; a new one takes the place of the rarest, and at each such change
+ * old counts fade, so that a channel that never comes back to a value keeps a table that says little.
  */
 
 const MAX_LEVELS = 16;
 /** A level's count after any level, as a share of a count after this very one. */
 const OVERALL_SHARE = 1;
 
+/** What is left of every overall count when a new value comes into a full table. */
+const FADE = 0.98;
+
 export class LevelTable {
-  /** In order of first sight. */
+  /** In no order. */
   readonly #levels = new Float64Array(MAX_LEVELS);
   /** Row: level before, column: level after. */
   readonly #counts = new Float64Array(MAX_LEVELS * MAX_LEVELS);
@@ -16,11 +20,10 @@ export class LevelTable {
   /** Probability of each level next, as `prepare` left it. */
   readonly #mass = new Float64Array(MAX_LEVELS);
   #count = 0;
-  #gaveUp = false;
 
   /** Readies the probabilities of the next index after `last`; false when the table has nothing to say. */
   prepare(last: number): boolean {
-    if (this.#gaveUp || this.#count === 0) return false;
+    if (this.#count === 0) return false;
     const from = this.#find(last);
     let overall = 0;
     let total = 0;
@@ -51,9 +54,7 @@ export class LevelTable {
 
   /** Counts `index` after `last`. */
   learn(last: number, index: number): void {
-    if (this.#gaveUp) return;
     const to = this.#findOrAdd(index);
-    if (this.#gaveUp) return;
     this.#overall[to]!++;
     const from = this.#find(last);
     if (from >= 0) this.#counts[from * MAX_LEVELS + to]!++;
@@ -64,14 +65,23 @@ export class LevelTable {
     return -1;
   }
 
+  /** Clears the rarest level and gives its place. */
+  #evict(): number {
+    let least = 0;
+    for (let i = 1; i < MAX_LEVELS; i++) if (this.#overall[i]! < this.#overall[least]!) least = i;
+    for (let i = 0; i < MAX_LEVELS; i++) {
+      this.#counts[least * MAX_LEVELS + i] = 0;
+      this.#counts[i * MAX_LEVELS + least] = 0;
+      this.#overall[i]! *= FADE;
+    }
+    this.#overall[least] = 0;
+    return least;
+  }
+
   #findOrAdd(index: number): number {
     const found = this.#find(index);
     if (found >= 0) return found;
-    if (this.#count === MAX_LEVELS) {
-      this.#gaveUp = true;
-      return -1;
-    }
-    const at = this.#count++;
+    const at = this.#count < MAX_LEVELS ? this.#count++ : this.#evict();
     this.#levels[at] = index;
     return at;
   }

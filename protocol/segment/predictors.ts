@@ -5,7 +5,7 @@
  *   forecast   the filter's one-step forecast as it stands                                   narrow and wide
  *   last       the last value                                                                narrow and wide
  *   repeat     exactly the last value
- *   levels     the count table, while the channel shows few levels (levels.ts)
+ *   levels     the count table of values seen (levels.ts)
  *
  * Each of the first three errs by a Student t (student.ts) whose scale follows its own recent errors. The weights follow
  * the share of each reading that each predictor explains (expectation-maximisation on the run: Titterington 1984). The
@@ -29,6 +29,10 @@ const WEIGHT_RATE = 0.2;
 const WEIGHT_PRIOR = 3;
 /** Share of weight dealt out evenly after each reading, so that no predictor is ever lost. */
 const WEIGHT_SHARED = 0.001;
+/** Below this weight the count table is left out of the sums, which it would slow for nothing. */
+const SILENT = 1 / 512;
+/** Below this probability nothing is learnt about weights: the differences of tails have no digits left. */
+const LEAST_TOTAL = 1e-200;
 const SCALE_RATE = 0.02;
 const SCALE_PRIOR = 10;
 /** Where the bundle names no scale the first guess gives way sooner. */
@@ -37,7 +41,7 @@ const UNKNOWN_SCALE = 16;
 /** Mean absolute error to standard deviation, near enough for a normal: √(π/2) = 1.253. */
 const MEAN_TO_SCALE = 1.2;
 /** An error counts in the scale up to so many times the scale. */
-const SCALE_CLIP = 8;
+const SCALE_CLIP = 5;
 /** Least width in lattice steps: a forecast that is always right stays cheap, one miss stays payable. */
 const LEAST_WIDTH = 1 / 16;
 const LEAST_SCALE = 1 / 64;
@@ -46,7 +50,9 @@ const MOST_SCALE = 2 ** 41;
 const LAST_SCALE = 1.25;
 
 export class Predictors {
-  readonly #weights = Float64Array.from(FIRST_WEIGHTS);
+  /** Two sets, by whether the value before was a repeat: machines at rest are another plant than machines at work. */
+  readonly #weightSets = [Float64Array.from(FIRST_WEIGHTS), Float64Array.from(FIRST_WEIGHTS)] as const;
+  readonly #learnt = new Float64Array(2);
   readonly #masses = new Float64Array(EXPERTS);
   readonly #centres = new Float64Array(CENTRES);
   readonly #scales = new Float64Array(CENTRES);
@@ -54,8 +60,14 @@ export class Predictors {
   readonly #inverse = new Float64Array(CONTINUOUS);
   readonly #levels = new LevelTable();
   readonly #scalePrior: number;
+  /** The set in use for the reading at hand. */
+  #weights: Float64Array = this.#weightSets[0];
   #levelsSpeak = false;
+  #levelsKnow = false;
+  #repeated: 0 | 1 = 0;
   #last = 0;
+  #pivot = 0;
+  #width = 0;
   #seen = 0;
 
   /** `scale`: expected size of a residual in lattice steps, from the bundle; not finite or not positive where unknown. */
@@ -84,30 +96,32 @@ export class Predictors {
 
   /** Readies the mixture for one reading: where each predictor stands, in lattice steps. */
   prepare(corrected: number, forecast: number): void {
-    const last = this.#seen > 0 ? this.#last : Math.round(forecast);
-    this.#last = last;
+    if (this.#seen === 0) this.#last = Math.round(forecast);
     this.#centres[0] = corrected;
     this.#centres[1] = forecast;
-    this.#centres[2] = last;
+    this.#centres[2] = this.#last;
     for (let i = 0; i < CENTRES; i++)
       for (let j = 0; j < SPREADS.length; j++)
         this.#inverse[i * SPREADS.length + j] = 1 / (this.#scales[i]! * SPREADS[j]! + LEAST_WIDTH);
-    this.#levelsSpeak = this.#levels.prepare(last);
+    this.#weights = this.#weightSets[this.#repeated];
+    this.#levelsKnow = this.#levels.prepare(this.#last);
+    this.#levelsSpeak = this.#levelsKnow && this.#weights[LEVELS]! > SILENT;
+    const heaviest = this.#heaviest();
+    this.#pivot = heaviest < CONTINUOUS ? Math.round(this.#centres[heaviest >> 1]!) : this.#last;
+    this.#width = heaviest < CONTINUOUS ? 1 / this.#inverse[heaviest]! : 0;
   }
 
-  /** Whole number near the middle of the heaviest predictor. */
+  /** Whole number near the middle of the heaviest predictor: where coding starts. */
   get pivot(): number {
-    const heaviest = this.#heaviest();
-    return heaviest < CONTINUOUS ? Math.round(this.#centres[heaviest >> 1]!) : this.#last;
+    return this.#pivot;
   }
 
   /** Width of the heaviest predictor, in lattice steps; 0 for those that name exact values. */
   get width(): number {
-    const heaviest = this.#heaviest();
-    return heaviest < CONTINUOUS ? 1 / this.#inverse[heaviest]! : 0;
+    return this.#width;
   }
 
-  /** Probability that sign × index ≥ x, for whole x; weights need not sum to 1 where the table is silent. */
+  /** Probability that sign × index ≥ x, for whole x; falls short of 1 by the table's weight where it is silent. */
   tail(sign: number, x: number): number {
     const edge = x - 0.5;
     let sum = 0;
@@ -129,41 +143,39 @@ export class Predictors {
     this.#last = index;
   }
 
-  /** Learns from the index that came. */
+  /** Learns from the index that came. A value that was named exactly says nothing about the scale of errors. */
   learn(index: number): void {
     this.#seen++;
-    this.#learnWeights(index);
-    const rate = Math.max(SCALE_RATE, 1 / (this.#seen + this.#scalePrior));
+    const erring = this.#learnWeights(index);
+    const rate = erring * Math.max(SCALE_RATE, 1 / (this.#seen + this.#scalePrior));
     for (let i = 0; i < CENTRES; i++) {
       const scale = this.#scales[i]!;
       const error = Math.min(Math.abs(index - this.#centres[i]!), SCALE_CLIP * scale + 1);
       this.#scales[i] = within(scale + rate * (MEAN_TO_SCALE * error - scale), LEAST_SCALE, MOST_SCALE);
     }
     this.#levels.learn(this.#last, index);
+    this.#repeated = index === this.#last ? 1 : 0;
     this.#last = index;
   }
 
-  #learnWeights(index: number): void {
+  /** Moves the weights; gives the share of `index` that the predictors with an error explain. */
+  #learnWeights(index: number): number {
     const masses = this.#masses;
     const weights = this.#weights;
-    for (let i = 0; i < CONTINUOUS; i++) masses[i] = this.#massOf(index, this.#centres[i >> 1]!, this.#inverse[i]!);
+    for (let i = 0; i < CONTINUOUS; i++) masses[i] = massOf(index, this.#centres[i >> 1]!, this.#inverse[i]!);
     masses[REPEAT] = index === this.#last ? 1 : 0;
-    masses[LEVELS] = this.#levelsSpeak ? this.#levels.massOf(index) : 0;
+    masses[LEVELS] = this.#levelsKnow ? this.#levels.massOf(index) : 0;
     let total = 0;
     for (let i = 0; i < EXPERTS; i++) total += weights[i]! * masses[i]!;
-    if (!(total > Number.MIN_VALUE * 2 ** 60)) return;
-    const rate = Math.max(WEIGHT_RATE, 1 / (this.#seen + WEIGHT_PRIOR));
+    if (!(total > LEAST_TOTAL)) return 1;
+    const rate = Math.max(WEIGHT_RATE, 1 / (++this.#learnt[this.#repeated]! + WEIGHT_PRIOR));
+    let erring = 0;
     for (let i = 0; i < EXPERTS; i++) {
-      const weight = weights[i]!;
-      const moved = weight + rate * ((weight * masses[i]!) / total - weight);
-      weights[i] = moved * (1 - WEIGHT_SHARED) + WEIGHT_SHARED / EXPERTS;
+      const explained = (weights[i]! * masses[i]!) / total;
+      if (i < CONTINUOUS) erring += explained;
+      weights[i] = (weights[i]! + rate * (explained - weights[i]!)) * (1 - WEIGHT_SHARED) + WEIGHT_SHARED / EXPERTS;
     }
-  }
-
-  /** Probability of exactly `index`, taken on the tail's side so that it does not cancel. */
-  #massOf(index: number, centre: number, inverse: number): number {
-    const distance = Math.abs(index - centre);
-    return upperTail((distance - 0.5) * inverse) - upperTail((distance + 0.5) * inverse);
+    return erring;
   }
 
   #heaviest(): number {
@@ -171,6 +183,12 @@ export class Predictors {
     for (let i = 1; i < EXPERTS; i++) if (this.#weights[i]! > this.#weights[best]!) best = i;
     return best;
   }
+}
+
+/** Probability of exactly `index`, taken on the tail's side so that it does not cancel. */
+function massOf(index: number, centre: number, inverse: number): number {
+  const distance = Math.abs(index - centre);
+  return upperTail((distance - 0.5) * inverse) - upperTail((distance + 0.5) * inverse);
 }
 
 function within(value: number, least: number, most: number): number {
