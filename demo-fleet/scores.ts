@@ -42,18 +42,23 @@ interface Pending {
 export class Scorer {
   readonly signals: number;
   readonly horizon: number;
-  private readonly period: number;
+  readonly rivals: readonly string[];
+  private readonly period: number | null;
   private readonly firstTick: number;
   private readonly readings: Float64Array[] = [];
   private readonly pending: Pending[] = [];
   private readonly tallies = new Map<string, Tally>();
   private readonly seen = new Set<number>();
 
-  /** `firstTick`: of the first reading that will be added, a period before the first origin to be scored, or earlier. */
-  constructor(options: { signals: number; horizon: number; period: number; firstTick: number }) {
+  /**
+   * `firstTick`: of the first reading that will be added, a period before the first origin to be scored, or earlier.
+   * `period` in ticks; null: no period is known, and the seasonal rival stays away.
+   */
+  constructor(options: { signals: number; horizon: number; period: number | null; firstTick: number }) {
     this.signals = options.signals;
     this.horizon = options.horizon;
     this.period = options.period;
+    this.rivals = RIVALS.filter((name) => options.period !== null || name !== 'seasonal persistence');
     this.firstTick = options.firstTick;
   }
 
@@ -82,14 +87,14 @@ export class Scorer {
     const mean = (pick: (one: SignalMeans) => number): number =>
       bySignal.reduce((sum, one) => sum + pick(one), 0) / bySignal.length;
     const mse = mean((one) => one.mse);
-    const rivalMse = RIVALS.map((_, r) => mean((one) => one.rivalMse[r]));
+    const rivalMse = this.rivals.map((_, r) => mean((one) => one.rivalMse[r]));
     const best = Math.min(...rivalMse);
     return {
       label,
       pairs: tally.count.reduce((sum, value) => sum + value, 0),
       mse,
       rivalMse,
-      bestRival: RIVALS[rivalMse.indexOf(best)],
+      bestRival: this.rivals[rivalMse.indexOf(best)],
       skill: 1 - mse / best,
       coverage: mean((one) => one.coverage),
       signalSkill: bySignal.map((one) => 1 - one.mse / Math.min(...one.rivalMse)),
@@ -104,16 +109,19 @@ export class Scorer {
       const slope = (now - this.held(forecast.origin - horizon, i)) / horizon;
       for (let h = 1; h <= horizon; h++) {
         const came = this.reading(forecast.origin + h, i);
-        const seasonal = this.reading(forecast.origin + h - this.period, i);
         const at = i * 3 * horizon + h - 1;
         const error = forecast.path[at] - came;
-        const rivals = [now - came, seasonal - came, now + slope * h - came];
-        if (Number.isNaN(error + rivals[0] + rivals[1] + rivals[2])) continue;
+        const line = now + slope * h - came;
+        const rivals =
+          this.period === null
+            ? [now - came, line]
+            : [now - came, this.reading(forecast.origin + h - this.period, i) - came, line];
+        if (Number.isNaN(rivals.reduce((sum, value) => sum + value, error))) continue;
         const cell = i * horizon + h - 1;
         tally.count[cell]++;
         tally.squared[cell] += error * error;
         if (came >= forecast.path[at + horizon] && came <= forecast.path[at + 2 * horizon]) tally.inside[cell]++;
-        for (let r = 0; r < RIVALS.length; r++) tally.rivalSquared[r][cell] += rivals[r] * rivals[r];
+        for (let r = 0; r < rivals.length; r++) tally.rivalSquared[r][cell] += rivals[r] * rivals[r];
       }
     }
   }
@@ -127,7 +135,7 @@ export class Scorer {
         count: new Float64Array(size),
         squared: new Float64Array(size),
         inside: new Float64Array(size),
-        rivalSquared: RIVALS.map(() => new Float64Array(size)),
+        rivalSquared: this.rivals.map(() => new Float64Array(size)),
       };
       this.tallies.set(label, tally);
     }

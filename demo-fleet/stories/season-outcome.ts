@@ -1,0 +1,226 @@
+/**
+ * What a season came to: skill and coverage of the forecasts received, the way of the segments, the archive against the
+ * truth, what the refit gained, sizes and memory.
+ */
+import { readArchive } from '@stillwell/trainer';
+import { type ArchiveComparison, compareArchive } from '../archive-check.ts';
+import { expectBetween, expectExactly, type Verdict } from '../check.ts';
+import type { DeskSite, Fleet } from '../fleet.ts';
+import { formatColumns } from '../progress.ts';
+import { RIVALS, type Score } from '../scores.ts';
+import type { SegmentCounts } from '../segment-watch.ts';
+import type { SiteRun } from '../site-run.ts';
+import { STAND_IN, type StandIn } from '../stand-in.ts';
+import { ROUGH, WORN_SITE } from './season-plan.ts';
+import type { StoryContext, StoryResult } from './story.ts';
+
+/** Bounds of the promises. */
+const MAX_BUNDLE_BYTES = 24 * 1024;
+const MAX_GATEWAY_MIB = 90;
+const COVERAGE = [0.82, 0.97] as const;
+const MAX_BITS = 8;
+const MAX_SECONDS = 180;
+const SETTLE_SECONDS = 30;
+/** Stretches scored, in order. */
+const LABELS = ['as learned', 'worn', 'refitted'] as const;
+
+interface Inputs {
+  readonly context: StoryContext;
+  readonly fleet: Fleet;
+  readonly sites: readonly SiteRun[];
+  readonly worn: SiteRun;
+  readonly standIn: StandIn;
+}
+
+interface SiteOutcome {
+  readonly site: SiteRun;
+  readonly scores: readonly Score[];
+  readonly counts: SegmentCounts;
+  readonly desk: DeskSite;
+  readonly archive: ArchiveComparison;
+  readonly memory: number;
+}
+
+/** Waits for the last segments, compares and judges. */
+export async function gatherOutcome(inputs: Inputs): Promise<Omit<StoryResult, 'linger'>> {
+  const { context, fleet, sites, worn, standIn } = inputs;
+  context.narrator.live('waiting for the last segments to be decoded');
+  for (const site of sites) await fleet.untilArchived(site.name, SETTLE_SECONDS);
+  const status = await fleet.deskStatus();
+  const outcomes: SiteOutcome[] = [];
+  for (const site of sites) outcomes.push(await outcomeOf(site, fleet, status));
+  const before = standIn.scorer.score(STAND_IN, worn.deviations);
+  const after = worn.scorer.score('refitted', worn.deviations);
+  const verdicts = [
+    ...outcomes.flatMap(siteVerdicts),
+    ...refitVerdicts(before, after),
+    expectExactly('fleet', 'every message of a gateway can be read', fleet.unreadable.length, 0),
+    expectBetween(
+      'demo',
+      `done within ${MAX_SECONDS} s`,
+      context.narrator.seconds,
+      [0, MAX_SECONDS],
+      (s) => `${s.toFixed(0)} s`,
+    ),
+  ];
+  return {
+    report: [skillTable(outcomes), segmentTable(outcomes), refitLine(before, after)].join('\n\n'),
+    verdicts,
+    figures: { sites: outcomes.map(figuresOf), refit: { before, after }, unreadable: fleet.unreadable },
+    lookAt: lookAt(fleet, sites),
+  };
+}
+
+async function outcomeOf(site: SiteRun, fleet: Fleet, status: readonly DeskSite[]): Promise<SiteOutcome> {
+  const archive = await readArchive(fleet.archiveFolder, site.name);
+  const last = archive.ticks[archive.ticks.length - 1];
+  const names = site.description.channels.map((channel) => channel.name);
+  const desk = status.find((one) => one.site === site.name);
+  const counts = fleet.segments.bySite.get(site.name);
+  if (desk === undefined || counts === undefined)
+    throw new Error(`${site.name}: expected segments at the desk, got none`);
+  return {
+    site,
+    scores: LABELS.flatMap((label) => site.scorer.score(label, site.deviations) ?? []),
+    counts,
+    desk,
+    // A very late reading may still be on its way to the segment after the last one decoded.
+    archive: compareArchive(archive, names, site.said, site.playTick, last - ROUGH.veryLateTicks - 1),
+    memory: fleet.memory.get(site.name) ?? Number.NaN,
+  };
+}
+
+function siteVerdicts({ site, scores, counts, desk, archive, memory }: SiteOutcome): Verdict[] {
+  const learned = scores.find((score) => score.label === 'as learned');
+  const largest = Math.max(...site.bundles.map((bundle) => bundle.bytes));
+  const percent = (x: number): string => `${(100 * x).toFixed(1)} %`;
+  const wrong = archive.missing + archive.different + archive.invented;
+  const expectedTicks = site.said.length - 2 * (site.perDay / 8) - 2 * ROUGH.veryLateTicks;
+  return [
+    expectBetween(site.name, 'forecasts beat the best rival', learned?.skill ?? Number.NaN, [1e-9, 1], percent),
+    expectBetween(
+      site.name,
+      `bounds of 90 % hold ${COVERAGE.map(percent).join(' … ')}`,
+      learned?.coverage ?? Number.NaN,
+      COVERAGE,
+      percent,
+    ),
+    expectExactly(site.name, 'segments lost', counts.segments - desk.segments + desk.broken, 0),
+    expectBetween(site.name, 'doubled segments were seen and kept once', desk.doubled, [
+      counts.doubled,
+      Number.POSITIVE_INFINITY,
+    ]),
+    expectExactly(site.name, 'archive differs from what the sensors said in', wrong, 0),
+    expectBetween(site.name, `archive reaches to tick ${expectedTicks} of play`, archive.ticks, [
+      expectedTicks,
+      Number.POSITIVE_INFINITY,
+    ]),
+    expectBetween(
+      site.name,
+      `at most ${MAX_BITS} bits a reading`,
+      desk.bitsPerReading ?? Number.NaN,
+      [0, MAX_BITS],
+      (x) => x.toFixed(2),
+    ),
+    expectBetween(site.name, 'bundle at most 24 KiB', largest, [1, MAX_BUNDLE_BYTES], (x) => `${x} bytes`),
+    expectBetween(
+      site.name,
+      `gateway at most ${MAX_GATEWAY_MIB} MiB`,
+      memory,
+      [1, MAX_GATEWAY_MIB],
+      (x) => `${x.toFixed(0)} MiB`,
+    ),
+  ];
+}
+
+function refitVerdicts(before: Score | null, after: Score | null): Verdict[] {
+  const gain = before === null || after === null ? Number.NaN : 1 - after.mse / before.mse;
+  return [
+    expectBetween(
+      WORN_SITE,
+      'refitted bundle beats the old one on the days after',
+      gain,
+      [1e-9, 1],
+      (x) => `${(100 * x).toFixed(1)} % less error`,
+    ),
+  ];
+}
+
+function skillTable(outcomes: readonly SiteOutcome[]): string {
+  const rows = outcomes.flatMap(({ site, scores }) =>
+    scores.map((score) => [
+      site.name,
+      score.label,
+      String(score.pairs),
+      score.mse.toFixed(3),
+      ...score.rivalMse.map((mse) => mse.toFixed(3)),
+      `${(100 * score.skill).toFixed(1)} %`,
+      `${(100 * score.coverage).toFixed(1)} %`,
+    ]),
+  );
+  return (
+    'Forecasts received over MQTT, all signals and steps, squared error in units of each signal’s variance:\n' +
+    formatColumns(['site', 'stretch', 'pairs', 'ours', ...RIVALS, 'skill', 'coverage'], rows)
+  );
+}
+
+function segmentTable(outcomes: readonly SiteOutcome[]): string {
+  const rows = outcomes.map(({ site, counts, desk, archive, memory }) => [
+    site.name,
+    String(counts.segments),
+    String(desk.segments),
+    String(desk.doubled),
+    String(counts.segments - desk.segments),
+    String(archive.readings),
+    String(archive.missing + archive.different + archive.invented),
+    String(desk.corrections),
+    (desk.bitsPerReading ?? Number.NaN).toFixed(2),
+    String(site.serving.bytes),
+    memory.toFixed(0),
+  ]);
+  const heads = [
+    'site',
+    'sent',
+    'received',
+    'doubled',
+    'lost',
+    'readings',
+    'wrong',
+    'late merged',
+    'bits/reading',
+    'bundle B',
+    'MiB',
+  ];
+  return `Segments, archive against what the sensors said, bundle size, gateway memory:\n${formatColumns(heads, rows)}`;
+}
+
+function refitLine(before: Score | null, after: Score | null): string {
+  if (before === null || after === null) return `${WORN_SITE}: no forecast of the refitted bundle came in`;
+  return (
+    `${WORN_SITE} after its seal failed and the refit was rolled: error ${after.mse.toFixed(3)}, ` +
+    `with the old bundle it would have been ${before.mse.toFixed(3)} (${after.pairs} pairs)`
+  );
+}
+
+function figuresOf({ site, scores, counts, desk, archive, memory }: SiteOutcome): Record<string, unknown> {
+  const bundles = site.bundles.map(({ bytes, digest }) => ({ bytes, digest }));
+  return {
+    site: site.name,
+    signals: site.signalNames,
+    scores,
+    segments: counts,
+    desk,
+    archive,
+    bundles,
+    memoryMiB: memory,
+    path: site.telemetry.counts,
+  };
+}
+
+function lookAt(fleet: Fleet, sites: readonly SiteRun[]): string[] {
+  return [
+    `broker          ${fleet.broker.url}`,
+    `live forecasts  npm run stillwell -- watch --broker ${fleet.broker.url} --site ${sites[0].name}`,
+    `what the desk holds  npm run stillwell -- desk status --data ${fleet.archiveFolder}`,
+  ];
+}

@@ -1,0 +1,75 @@
+/**
+ * The season's calendar: when the stretches of play begin, which sensors fail, and what befalls gateways, links and desk.
+ */
+import type { Fault, Roughness } from '../faults.ts';
+import type { LogHabit } from '../history-files.ts';
+
+/** A Monday; the zones of the sites have no clock changes. */
+export const PLAY_MS = Date.UTC(2025, 3, 28);
+export const HISTORY_DAYS = 24;
+export const DEFAULT_DAYS = 5;
+/** How the sites' logs are kept, in the order of the sites. */
+export const HABITS: readonly LogHabit[] = ['wide-utc', 'long', 'wide-utc', 'wide-local', 'wide-utc', 'long'];
+/** How rough the way from the sensors is. */
+export const ROUGH: Roughness = {
+  lateShare: 0.01,
+  lateTicks: 1,
+  veryLateShare: 0.0005,
+  veryLateTicks: 12,
+  doubledShare: 0.01,
+};
+/** Every how many-th segment message is sent twice. */
+export const DOUBLE_EVERY = 7;
+export const SEGMENTS_PER_DAY = 8;
+/** The plant that wears, and how far it is gone when it does: its door seal at the end of its life. */
+export const WORN_SITE = 'penvarrow';
+export const WEAR = 1;
+/** Sites whose gateway loses power, and whose link is cut. */
+export const POWER_CUT_SITE = 'quennadale';
+export const LINK_CUT_SITE = 'brackwith';
+
+/** Days from the start of play. */
+export interface Timetable {
+  /** Filters are warm from here on; forecasts count. */
+  readonly learned: number;
+  readonly powerCut: number;
+  readonly linkCut: number;
+  readonly deskAway: number;
+  readonly deskBack: number;
+  /** The seal fails, and the new bundle is rolled. */
+  readonly worn: number;
+  readonly refitted: number;
+  readonly end: number;
+}
+
+const WARM_DAYS = 0.8;
+
+/** Lays the season over a number of days, at least two. */
+export function timetableOf(days: number): Timetable {
+  const at = (share: number): number => WARM_DAYS + (days - WARM_DAYS) * share;
+  return {
+    learned: WARM_DAYS,
+    powerCut: at(0.06),
+    linkCut: at(0.1),
+    deskAway: at(0.14),
+    deskBack: at(0.2),
+    worn: at(0.3),
+    refitted: at(0.7),
+    end: days,
+  };
+}
+
+/** Sensors that fail in play, by site; ticks from the start of play. */
+export function faultsOf(site: string, ticksPerDay: number): readonly Fault[] {
+  const span = (kind: Fault['kind'], channel: number, fromDay: number, hours: number, perTick = 0): Fault => ({
+    kind,
+    channel,
+    from: Math.round(fromDay * ticksPerDay),
+    until: Math.round((fromDay + hours / 24) * ticksPerDay),
+    perTick,
+  });
+  if (site === 'ellerquint') return [span('silent', 2, 1.1, 3), span('silent', 0, 1.5, 0.5)];
+  if (site === 'tessenby') return [span('stuck', 1, 1.2, 1.5)];
+  if (site === 'stavendrith') return [span('drift', 2, 0.9, 24, 0.001)];
+  return [];
+}

@@ -1,0 +1,27 @@
+import { describe, expect, it } from 'vitest';
+import { DEMO_SITES } from '../../../demo-fleet/plants/sites.ts';
+import { faultsOf, HABITS, timetableOf } from '../../../demo-fleet/stories/season-plan.ts';
+
+describe('the season', () => {
+  it('keeps its order however many days it is given', () => {
+    for (const days of [3, 4, 5, 12, 30]) {
+      const { learned, powerCut, linkCut, deskAway, deskBack, worn, refitted, end } = timetableOf(days);
+      const order = [0, learned, powerCut, linkCut, deskAway, deskBack, worn, refitted, end];
+      expect(order).toEqual([...order].sort((a, b) => a - b));
+      expect(end).toBe(days);
+      // Long enough to be judged on: no stretch shorter than half a day.
+      for (const length of [worn - learned, refitted - worn, end - refitted])
+        expect(length).toBeGreaterThanOrEqual(0.5);
+    }
+  });
+
+  it('names a habit for every site, and only channels that are there in its faults', () => {
+    expect(HABITS.length).toBe(DEMO_SITES.length);
+    const faults = DEMO_SITES.flatMap((site) => faultsOf(site.name, 1440).map((fault) => ({ site, fault })));
+    expect(faults.length).toBeGreaterThan(2);
+    for (const { site, fault } of faults) {
+      expect(fault.channel).toBeLessThan(site.channels.length);
+      expect(fault.until).toBeGreaterThan(fault.from);
+    }
+  });
+});
