@@ -2,64 +2,36 @@
  * From a history to a candidate bundle, the steps in order: split by time, clean, learn, shrink, round, calibrate, judge.
  * The same series, site, options and seed give the same bytes; nothing here reads a clock into the document.
  */
-import type { Bundle, Site } from '@stillwell/protocol';
-import type { LinearModel } from '@stillwell/runtime/filter';
+import { type Bundle, decodeBundle, encodeBundle } from '@stillwell/protocol';
+import { type LinearModel, modelFromBundle } from '@stillwell/runtime/filter';
+import { type Composition, composeBundle, judgeTable, placeholderJudge } from './compose.ts';
+import { TrainError } from './errors.ts';
+import type { FitInput, FitOptions } from './fit-options.ts';
 import type { Series } from './history/series.ts';
-import type { Verdicts } from './judge/gate.ts';
-import type { Hindcast } from './judge/hindcast.ts';
-import type { Audit } from './quantise/audit.ts';
+import { bankName, featureCount } from './identify/bank.ts';
+import type { Choice } from './identify/choose.ts';
+import { learnAgain } from './identify/learn.ts';
+import { chooseSize, type Size, sizeBytes } from './identify/order.ts';
+import { learnInput, type Prepared, prepareHistory } from './identify/prepare.ts';
+import { type Taught, teach } from './identify/teach.ts';
+import { calibrate } from './judge/calibrate.ts';
+import { judge, type Verdicts, verdictSteps } from './judge/gate.ts';
+import { type Hindcast, hindcast } from './judge/hindcast.ts';
+import { meanOf } from './judge/scores.ts';
+import { type Audit, checkAtRest, replayError } from './quantise/audit.ts';
+import { floatModel, openCalibration, type Surroundings } from './quantise/float-model.ts';
+import { floatFactors, roundedFactors } from './quantise/quantise.ts';
+import { checkOptions, type Split, splitHistory } from './requirements.ts';
+import type { TickSpan } from './span.ts';
 
-export interface FitOptions {
-  readonly seed: number;
-  /** Share of the ticks, from the start, that the model learns from; in (0, 1). */
-  readonly learnShare: number;
-  /** Share right after it that chooses penalties and sets the bounds; what remains judges. */
-  readonly calibrateShare: number;
-  /** Largest bundle document in bytes. */
-  readonly maxBytes: number;
-  /** Nominal coverage of the bounds, in (0, 1). */
-  readonly coverage: number;
-  /** After judging, learn once more from every tick with the penalties already chosen. */
-  readonly useAll: boolean;
-  /** Why a person wants it sealed without skill; null otherwise. Stands in the bundle. */
-  readonly override: string | null;
-  readonly progress: (step: string) => void;
-}
-
-export const FIT_DEFAULTS: FitOptions = Object.freeze({
-  seed: 1,
-  learnShare: 0.6,
-  calibrateShare: 0.2,
-  maxBytes: 24 * 1024,
-  coverage: 0.9,
-  useAll: false,
-  override: null,
-  progress: () => {},
-});
-
-export interface FitInput {
-  readonly series: Series;
-  readonly site: Site;
-  /** The survey as saved; its digest goes into the provenance. */
-  readonly survey: unknown;
-  /** Per channel: readings are offset + k × step. */
-  readonly lattices: readonly { readonly step: number; readonly offset: number }[];
-  /** Document the new one is refitted from; its digest goes into the provenance. */
-  readonly previous?: Uint8Array | null;
-}
-
-/** Ticks fromTick <= n < toTick, absolute since 1970. */
-export interface TickSpan {
-  readonly fromTick: number;
-  readonly toTick: number;
-}
+export { FIT_DEFAULTS, type FitInput, type FitOptions } from './fit-options.ts';
 
 /** What the learning settled on. */
 export interface Chosen {
   /** Ridge penalty of each signal's own stage, relative to features of unit variance. */
   readonly ownPenalty: readonly number[];
-  /** Ridge penalty of the stage across signals; null: that stage did not pay. */
-  readonly crossPenalty: number | null;
+  /** Ridge penalty of the stage across signals, by signal; null: that stage did not pay. */
+  readonly crossPenalty: readonly (number | null)[];
   /** Name of the feature bank, and what it holds. */
   readonly bank: string;
   readonly featureCount: number;
@@ -69,6 +41,7 @@ export interface Chosen {
   readonly folds: number;
 }
 
+/** A judged candidate and all that a report needs. */
 export interface FitResult {
   /** The bundle document, ready to be written as a candidate. */
   readonly document: Uint8Array;
@@ -86,4 +59,172 @@ export interface FitResult {
   readonly warnings: readonly string[];
   /** Wall time of the steps in ms, for the terminal; not in the document. */
   readonly timings: Readonly<Record<string, number>>;
+}
+
+/** Rounds of trying a smaller size until the document fits. */
+const MOST_ROUNDS = 8;
+/** Step of the gateway's quantile tracker; measured to hold weekly coverage on real records. */
+const BOUNDS_RATE = 0.05;
+/** Rivals a hindcast has at most; their names and skills take bytes. */
+const MOST_RIVALS = 4;
+
+/**
+ * Fits a site's history.
+ *
+ * throws  TrainError 'options' or 'history' where the person can mend it, 'fit' where the numbers do not allow a model
+ */
+export async function fit(input: FitInput, options: FitOptions): Promise<FitResult> {
+  checkOptions(options);
+  const clock = startClock(options.progress);
+  const split = splitHistory(input.series, input.site, options);
+  clock.lap('cleaning the history');
+  const prepared = prepareHistory(input.series, input.site, input.lattices, split);
+  clock.lap('learning');
+  const taught = teach(input.series, prepared);
+  clock.lap('choosing the size and calibrating');
+  const small = shrink(input, options, split, prepared, taught);
+  clock.lap('judging');
+  const units = [...input.site.signals, ...input.site.inputs].map((signal) => signal.unit);
+  const cast = hindcast(modelFromBundle(small.bundle), input.series, { ...split.judged, learn: split.learn }, units);
+  const verdicts = judge(cast);
+  const audit = auditRounding(small, cast, input.series, split);
+  clock.lap('writing the candidate');
+  const parts = options.useAll ? learnFromAll(input.series, prepared, taught, small) : small.parts;
+  const document = encodeBundle(composeBundle({ ...parts, judge: judgeTable(cast, verdicts, options.override) }));
+  const bundle = decodeBundle(document);
+  return Object.freeze({
+    document,
+    bundle,
+    model: modelFromBundle(bundle),
+    ...split,
+    hindcast: cast,
+    audit,
+    verdicts,
+    chosen: chosenOf(taught.choice, prepared.around.season.periodTicks, small.size),
+    warnings: [...prepared.warnings, ...taught.warnings],
+    timings: clock.laps(),
+  });
+}
+
+/** A small model within the byte limit, calibrated. */
+interface Small {
+  readonly size: Size;
+  readonly bundle: Bundle;
+  readonly parts: Composition;
+  /** The same size without rounding, with the same calibration. */
+  readonly float: LinearModel;
+}
+
+function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Prepared, taught: Taught): Small {
+  const { learned, calibrationMoments, choice } = taught;
+  const around: Surroundings = {
+    ...prepared.around,
+    bank: choice.bank,
+    coverage: options.coverage,
+    boundsRate: BOUNDS_RATE,
+  };
+  const horizons = verdictSteps(around.horizon);
+  const names = input.series.names.slice(0, around.signalCount);
+  let tensorBytes = options.maxBytes;
+  for (let round = 0; round < MOST_ROUNDS; round++) {
+    const size = chooseSize(learned, calibrationMoments, tensorBytes);
+    const { factors, tensors } = roundedFactors(learned, size.order, size.basisCount);
+    const parts = {
+      input,
+      options,
+      around,
+      tensors,
+      calibration: openCalibration(around.scalings.length, around.signalCount * around.horizon),
+      judge: placeholderJudge(names, horizons, MOST_RIVALS, options.override),
+      learnedToTick: split.learn.toTick,
+      settled: settledOf(split, choice, size),
+    };
+    const over = encodeBundle(composeBundle(parts)).length - options.maxBytes;
+    if (over > 0) {
+      tensorBytes = Math.min(tensorBytes, sizeBytes(size, learned)) - over;
+      continue;
+    }
+    const span = indices(split.calibrate, input.series);
+    const open = floatModel(factors, around, parts.calibration);
+    const calibration = calibrate(open, input.series, span, options.coverage);
+    const bundle = composeBundle({ ...parts, calibration });
+    const float = floatModel(floatFactors(learned, size.order, size.basisCount), around, calibration);
+    return { size, bundle, parts: { ...parts, calibration }, float };
+  }
+  throw new TrainError(
+    'fit',
+    `--max-bytes: expected room for at least one state, got ${options.maxBytes} bytes for ${names.length} signals and a horizon ` +
+      `of ${around.horizon} ticks. Raise the limit, or shorten the horizon.`,
+  );
+}
+
+function auditRounding(small: Small, cast: Hindcast, series: Series, split: Split): Audit {
+  const model = modelFromBundle(small.bundle);
+  const judged = indices(split.judged, series);
+  const settled = { fromTick: Math.max(0, judged.fromTick - 4 * model.horizon), toTick: judged.fromTick };
+  checkAtRest(model, series, settled);
+  const floatMse = replayError(small.float, series, judged);
+  const quantisedMse = meanOf(cast.mseStandardised);
+  return { floatMse, quantisedMse, ratio: floatMse > 0 ? quantisedMse / floatMse : 1 };
+}
+
+/** Learns once more from every tick, at the size and penalties already judged; bounds stay as calibrated. */
+function learnFromAll(series: Series, prepared: Prepared, taught: Taught, small: Small): Composition {
+  const learned = learnAgain(learnInput(prepared), taught.choice, series.ticks);
+  const order = Math.min(small.size.order, learned.bottleneck.carried.length);
+  const { tensors } = roundedFactors(learned, order, small.size.basisCount);
+  return { ...small.parts, tensors, learnedToTick: series.firstTick + series.ticks };
+}
+
+/** Goes into the provenance: what `hindcast` needs to know of the split, and what was chosen. */
+function settledOf(split: Split, choice: Choice, size: Size): Readonly<Record<string, unknown>> {
+  const span = ({ fromTick, toTick }: TickSpan): readonly number[] => [fromTick, toTick];
+  return {
+    learn: span(split.learn),
+    calibrate: span(split.calibrate),
+    judged: span(split.judged),
+    ownPenalty: [...new Set(choice.ownPenalty)],
+    crossPenalty: [...new Set(choice.crossPenalty)],
+    order: size.order,
+    basis: size.basisCount,
+  };
+}
+
+function chosenOf(choice: Choice, periodTicks: number, size: Size): Chosen {
+  return {
+    ownPenalty: choice.ownPenalty,
+    crossPenalty: choice.crossPenalty,
+    bank: bankName(choice.bank),
+    featureCount: featureCount(choice.bank),
+    periodTicks,
+    order: size.order,
+    basisCount: size.basisCount,
+    folds: choice.folds,
+  };
+}
+
+function indices(span: TickSpan, series: Series): TickSpan {
+  return { fromTick: span.fromTick - series.firstTick, toTick: span.toTick - series.firstTick };
+}
+
+/** Names each step as it begins and remembers how long it took. */
+function startClock(progress: (step: string) => void): { lap(step: string): void; laps(): Record<string, number> } {
+  const laps: Record<string, number> = {};
+  let current: string | null = null;
+  let startedMs = 0;
+  const close = (): void => {
+    if (current !== null) laps[current] = performance.now() - startedMs;
+  };
+  return {
+    lap(step) {
+      close();
+      current = step;
+      startedMs = performance.now();
+      progress(step);
+    },
+    laps() {
+      close();
+      return laps;
+    },
+  };
 }

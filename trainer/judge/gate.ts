@@ -2,6 +2,11 @@
  * Says in plain words whether the model beat the obvious guesses on history it never saw. The gate is deliberately
  * simple: skill over the strongest simple rival, averaged over the horizon. It is not a significance test.
  */
+import type { Hindcast } from './hindcast.ts';
+import { meanOf, skillScore } from './scores.ts';
+
+/** Rivals that anyone would guess; the gate asks for skill over these. The window ridge is reported beside them. */
+const SIMPLE_RIVALS: readonly string[] = ['persistence', 'seasonal persistence', 'drift'];
 
 /** The judge's word on one signal. */
 export interface Verdict {
@@ -27,4 +32,96 @@ export interface Verdicts {
   readonly hasSkill: boolean;
   /** One sentence for the whole model. */
   readonly sentence: string;
+}
+
+/**
+ * Judges a hindcast.
+ *
+ * shapes  as Hindcast
+ * units   skill and coverage as shares
+ * throws  nothing; a signal without one judged reading has skill NaN and says so
+ * source  skill score: Murphy, Monthly Weather Review 116 (1988)
+ * cost    trivial
+ */
+export function judge(hindcast: Hindcast): Verdicts {
+  const horizons = verdictSteps(hindcast.horizon);
+  const signals = hindcast.signals.map((_, i) => judgeSignal(hindcast, i, horizons));
+  const skills = Float64Array.from(signals, (verdict) => verdict.skill);
+  const meanSkill = meanOf(skills);
+  const better = signals.filter((verdict) => verdict.skill > 0).length;
+  const hasSkill = better > 0 && meanSkill > 0;
+  return Object.freeze({
+    horizons,
+    signals,
+    meanSkill,
+    hasSkill,
+    sentence: wholeSentence(signals.length, better, meanSkill),
+  });
+}
+
+/** Steps the verdicts stand for: 1, H/4, H/2 and H, without repeats. */
+export function verdictSteps(horizon: number): number[] {
+  const steps = [1, Math.round(horizon / 4), Math.round(horizon / 2), horizon].map((h) => Math.max(1, h));
+  return [...new Set(steps)].sort((a, b) => a - b);
+}
+
+/** Index of the strongest simple rival over some steps of a signal; -1 where there is none to compare with. */
+export function strongestSimple(hindcast: Hindcast, signal: number, from: number, to: number): number {
+  const cells = hindcast.signals.length * hindcast.horizon;
+  let best = -1;
+  let least = Number.POSITIVE_INFINITY;
+  hindcast.rivals.forEach((name, r) => {
+    if (!SIMPLE_RIVALS.includes(name)) return;
+    const row = r * cells + signal * hindcast.horizon;
+    const mse = meanOf(hindcast.rivalMse, row + from, row + to);
+    if (mse >= least || Number.isNaN(mse)) return;
+    least = mse;
+    best = r;
+  });
+  return best;
+}
+
+function judgeSignal(hindcast: Hindcast, i: number, horizons: readonly number[]): Verdict {
+  const H = hindcast.horizon;
+  const cells = hindcast.signals.length * H;
+  const skillOver = (from: number, to: number): readonly [number, number] => {
+    const rival = strongestSimple(hindcast, i, from, to);
+    if (rival === -1) return [Number.NaN, -1];
+    const theirs = meanOf(hindcast.rivalMse, rival * cells + i * H + from, rival * cells + i * H + to);
+    return [skillScore(meanOf(hindcast.mse, i * H + from, i * H + to), theirs), rival];
+  };
+  const [skill, rival] = skillOver(0, H);
+  const verdict = {
+    signal: hindcast.signals[i],
+    bestRival: rival === -1 ? 'none' : hindcast.rivals[rival],
+    skill,
+    skillAt: horizons.map((h) => skillOver(h - 1, h)[0]),
+    coverage: meanOf(hindcast.coverage, i * H, (i + 1) * H),
+  };
+  return { ...verdict, sentence: signalSentence(verdict, H, hindcast.nominalCoverage) };
+}
+
+function signalSentence(verdict: Omit<Verdict, 'sentence'>, horizon: number, nominal: number): string {
+  const { signal, skill, bestRival, coverage } = verdict;
+  if (Number.isNaN(skill)) return `${signal}: no readings in the judged part, so nothing is known of its skill.`;
+  const bounds = `${percent(coverage)} of readings fell inside the ${percent(nominal)} bounds`;
+  const over = horizon === 1 ? 'one step ahead' : `over ${horizon} steps`;
+  if (skill > 0) {
+    return `${signal}: ${over} the mean squared error is ${percent(skill)} below that of ${bestRival}, the best obvious guess; ${bounds}.`;
+  }
+  return `${signal}: no better than ${bestRival} ${over} (mean squared error ${percent(-skill)} above it); do not rely on its forecast; ${bounds}.`;
+}
+
+function wholeSentence(signals: number, better: number, meanSkill: number): string {
+  const of = `${better} of ${signals} ${signals === 1 ? 'signal' : 'signals'}`;
+  if (better > 0 && meanSkill > 0) {
+    return `Beats the best obvious guess on ${of}; on average the mean squared error is ${percent(meanSkill)} lower.`;
+  }
+  return `Shows no skill over the best obvious guess (better on ${of}, mean skill ${percent(meanSkill)}); it should not be sealed.`;
+}
+
+function percent(share: number): string {
+  if (!Number.isFinite(share)) return 'an unknown share';
+  const value = 100 * share;
+  return `${Math.abs(value) < 10 ? value.toFixed(1) : value.toFixed(0)} %`;
 }

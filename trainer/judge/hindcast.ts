@@ -1,6 +1,15 @@
 /**
- * Forecasts replayed over held-out history and scored beside the rivals.
+ * Forecasts replayed over held-out history and scored beside the rivals: one origin a tick, every step of every signal,
+ * only pairs whose reading is there. Readings are scored as the filter takes them, clipped to the bundle's widest values,
+ * so that one impossible spike does not decide the table; the rivals are scored on the same.
  */
+import type { LinearModel } from '@stillwell/runtime/filter';
+import type { Series } from '../history/series.ts';
+import type { TickSpan } from '../span.ts';
+import { Coverage } from './coverage.ts';
+import { type Moment, replay } from './replay.ts';
+import { carryForward, makeRivals, type Rival } from './rivals.ts';
+import { Scores } from './scores.ts';
 
 /**
  * shapes  arrays (ny × H), row-major, entry i·H + h - 1; rival arrays (rivals × ny × H)
@@ -41,4 +50,173 @@ export interface HindcastPath {
   readonly median: Float64Array;
   readonly lower: Float64Array;
   readonly upper: Float64Array;
+}
+
+/** What to judge, in ticks since 1970. */
+export interface HindcastSpan extends TickSpan {
+  /** What rivals may learn from; null, or outside the series: rivals that need it are left out. */
+  readonly learn: TickSpan | null;
+}
+
+/** Paths kept for plots: about this many, evenly spread. */
+const KEPT_PATHS = 120;
+
+/**
+ * Replays a model over a span and scores it beside the rivals.
+ *
+ * shapes  series with the model's channels; span inside it, longer than the horizon; units (nc)
+ * units   the signals'
+ * throws  RangeError if the span leaves the series or holds no whole horizon
+ * source  rolling origin: Tashman, International Journal of Forecasting 16 (2000)
+ * cost    one filter step and H scores a signal and rival at every origin
+ */
+export function hindcast(model: LinearModel, series: Series, span: HindcastSpan, units: readonly string[]): Hindcast {
+  const from = span.fromTick - series.firstTick;
+  const to = span.toTick - series.firstTick;
+  const { signalCount: ny, horizon: H } = model;
+  if (from < 1 || to > series.ticks || to - from < H) {
+    throw new RangeError(`Span ${from}..${to} with horizon ${H} leaves the ${series.ticks} ticks of the series.`);
+  }
+  const readings = series.values.slice(0, ny).map((y, i) => clipped(y, model.clipLow[i], model.clipHigh[i]));
+  const rivals = makeRivals({
+    carried: readings.map((y, i) => carryForward(y, model.mean[i])),
+    horizon: H,
+    periodTicks: model.seasonalPeriod,
+    learn: within(span.learn, series),
+  });
+  const tally = new Tally(ny, H, from, to, rivals, readings);
+  replay(model, series, { fromTick: from - 1, toTick: to }, (moment) => tally.visit(moment, series));
+  return tally.result(model, series, units);
+}
+
+class Tally {
+  readonly #ny: number;
+  readonly #horizon: number;
+  readonly #from: number;
+  readonly #to: number;
+  readonly #rivals: readonly Rival[];
+  readonly #readings: readonly Float64Array[];
+  readonly #own: Scores;
+  readonly #theirs: readonly Scores[];
+  readonly #coverage: Coverage;
+  readonly #residuals: readonly Float64Array[];
+  /** (ny) one-step forecast made at the tick before, in the signals' units. */
+  readonly #next: Float64Array;
+  readonly #path: Float64Array;
+  readonly #every: number;
+  readonly #paths: HindcastPath[] = [];
+
+  constructor(
+    ny: number,
+    horizon: number,
+    from: number,
+    to: number,
+    rivals: readonly Rival[],
+    readings: readonly Float64Array[],
+  ) {
+    this.#ny = ny;
+    this.#horizon = horizon;
+    this.#from = from;
+    this.#to = to;
+    this.#rivals = rivals;
+    this.#readings = readings;
+    this.#own = new Scores(ny * horizon);
+    this.#theirs = rivals.map(() => new Scores(ny * horizon));
+    this.#coverage = new Coverage(ny * horizon);
+    this.#residuals = readings.map(() => new Float64Array(to - from).fill(Number.NaN));
+    this.#next = new Float64Array(ny).fill(Number.NaN);
+    this.#path = new Float64Array(horizon);
+    this.#every = Math.max(1, Math.floor((to - from - horizon + 1) / KEPT_PATHS));
+  }
+
+  visit(moment: Moment, series: Series): void {
+    const { at, median } = moment;
+    for (let i = 0; i < this.#ny; i++) {
+      if (at >= this.#from) this.#residuals[i][at - this.#from] = this.#readings[i][at] - this.#next[i];
+      this.#next[i] = median[i * this.#horizon];
+    }
+    if (at + this.#horizon >= this.#to) return;
+    for (let i = 0; i < this.#ny; i++) this.#score(i, moment);
+    if ((at - this.#from + 1) % this.#every === 0) {
+      this.#paths.push({
+        originMs: (series.firstTick + at) * series.tickMs,
+        median: median.slice(),
+        lower: moment.lower.slice(),
+        upper: moment.upper.slice(),
+      });
+    }
+  }
+
+  #score(signal: number, { at, median, lower, upper }: Moment): void {
+    const y = this.#readings[signal];
+    const H = this.#horizon;
+    for (let h = 1; h <= H; h++) {
+      const reading = y[at + h];
+      if (Number.isNaN(reading)) continue;
+      const cell = signal * H + h - 1;
+      this.#own.add(cell, median[cell] - reading);
+      this.#coverage.add(cell, reading, lower[cell], upper[cell]);
+    }
+    this.#rivals.forEach((rival, r) => {
+      rival.forecast(signal, at, this.#path);
+      for (let h = 1; h <= H; h++) {
+        const reading = y[at + h];
+        if (!Number.isNaN(reading)) this.#theirs[r].add(signal * H + h - 1, this.#path[h - 1] - reading);
+      }
+    });
+  }
+
+  result(model: LinearModel, series: Series, units: readonly string[]): Hindcast {
+    const H = this.#horizon;
+    const own = this.#own;
+    const perCell = (values: Float64Array, power: number): Float64Array =>
+      values.map((value, cell) => value / model.scale[Math.floor(cell / H)] ** power);
+    return Object.freeze({
+      signals: series.names.slice(0, this.#ny),
+      units: units.slice(0, this.#ny),
+      horizon: H,
+      tickMs: series.tickMs,
+      origins: this.#to - this.#from - H + 1,
+      fromMs: (series.firstTick + this.#from) * series.tickMs,
+      toMs: (series.firstTick + this.#to) * series.tickMs,
+      rivals: this.#rivals.map((rival) => rival.name),
+      count: own.count,
+      mse: own.mse(),
+      mae: own.mae(),
+      bias: own.bias(),
+      mseStandardised: perCell(own.mse(), 2),
+      maeStandardised: perCell(own.mae(), 1),
+      rivalMse: joined(this.#theirs.map((scores) => scores.mse())),
+      rivalMae: joined(this.#theirs.map((scores) => scores.mae())),
+      nominalCoverage: model.coverage,
+      coverage: this.#coverage.share(),
+      width: this.#coverage.width(),
+      residuals: this.#residuals,
+      paths: this.#paths,
+      readings: this.#readings.map((y) => y.slice(this.#from, this.#to)),
+    });
+  }
+}
+
+/** NaN stays NaN. */
+function clipped(y: Float64Array, low: number, high: number): Float64Array {
+  return y.map((value) => Math.min(high, Math.max(low, value)));
+}
+
+/** The span as indices, or null where the series does not hold all of it. */
+function within(span: TickSpan | null, series: Series): TickSpan | null {
+  if (span === null) return null;
+  const fromTick = span.fromTick - series.firstTick;
+  const toTick = span.toTick - series.firstTick;
+  return fromTick >= 0 && toTick <= series.ticks && toTick > fromTick ? { fromTick, toTick } : null;
+}
+
+function joined(parts: readonly Float64Array[]): Float64Array {
+  const out = new Float64Array(parts.reduce((sum, part) => sum + part.length, 0));
+  let at = 0;
+  for (const part of parts) {
+    out.set(part, at);
+    at += part.length;
+  }
+  return out;
 }

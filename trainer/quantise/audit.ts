@@ -1,6 +1,21 @@
 /**
- * What rounding cost: the same hindcast with the float model and with the model as it stands in the bundle.
+ * What rounding cost: the same replay with the float model and with the model as it stands in the bundle. And whether what
+ * was rounded still behaves: the bank's poles are not rounded, but the loop through the forecast is closed when readings
+ * stop, so it is run with none until it must have come to rest.
  */
+import {
+  createBounds,
+  createState,
+  forecastPath,
+  intervalOf,
+  type LinearModel,
+  update,
+} from '@stillwell/runtime/filter';
+import { TrainError } from '../errors.ts';
+import type { Series } from '../history/series.ts';
+import { replay } from '../judge/replay.ts';
+import { meanOf, Scores } from '../judge/scores.ts';
+import type { TickSpan } from '../span.ts';
 
 /** Standardised mean squared errors over signals and steps of the judged part. */
 export interface Audit {
@@ -8,4 +23,65 @@ export interface Audit {
   readonly quantisedMse: number;
   /** quantisedMse / floatMse. */
   readonly ratio: number;
+}
+
+/**
+ * Standardised mean squared error of a model over a span, all signals and steps.
+ *
+ * shapes  span of indices into the series
+ * units   standardised²
+ * throws  FilterError if the model does not fit the series
+ * source  none
+ * cost    one replay
+ */
+export function replayError(model: LinearModel, series: Series, span: TickSpan): number {
+  const { signalCount: ny, horizon: H } = model;
+  const scores = new Scores(ny * H);
+  replay(model, series, { fromTick: span.fromTick - 1, toTick: span.toTick - H }, ({ at, median }) => {
+    for (let i = 0; i < ny; i++) {
+      for (let h = 1; h <= H; h++) {
+        const reading = series.values[i][at + h];
+        if (Number.isNaN(reading)) continue;
+        const clipped = Math.min(model.clipHigh[i], Math.max(model.clipLow[i], reading));
+        scores.add(i * H + h - 1, (median[i * H + h - 1] - clipped) / model.scale[i]);
+      }
+    }
+  });
+  return meanOf(scores.mse());
+}
+
+/**
+ * Runs the rounded model without readings for three horizons after a stretch of history, and checks what comes out.
+ *
+ * shapes  span of indices into the series, a few of them enough
+ * units   the signals'
+ * throws  TrainError 'fit' if a value is not finite or outside the clip
+ * source  none
+ * cost    as many filter steps
+ */
+export function checkAtRest(model: LinearModel, series: Series, span: TickSpan): void {
+  const { signalCount: ny, horizon: H } = model;
+  const state = createState(model);
+  const bounds = createBounds(model);
+  const median = new Float64Array(ny * H);
+  const lower = new Float64Array(ny * H);
+  const upper = new Float64Array(ny * H);
+  const readings = new Float64Array(model.channelCount);
+  const end = span.toTick + 3 * H;
+  for (let at = span.fromTick; at < end; at++) {
+    for (let c = 0; c < readings.length; c++) readings[c] = at < span.toTick ? series.values[c][at] : Number.NaN;
+    update(model, state, series.firstTick + at, readings);
+  }
+  forecastPath(model, state, median);
+  intervalOf(model, bounds, state, median, lower, upper);
+  for (let k = 0; k < median.length; k++) {
+    const i = Math.floor(k / H);
+    const isSound = median[k] >= model.clipLow[i] && median[k] <= model.clipHigh[i] && lower[k] <= upper[k];
+    if (isSound) continue;
+    throw new TrainError(
+      'fit',
+      `The rounded model left without readings: expected ${series.names[i]} within ${model.clipLow[i]} to ${model.clipHigh[i]}, ` +
+        `got ${median[k]} at step ${(k % H) + 1}. A larger --max-bytes or a longer history mends it.`,
+    );
+  }
 }

@@ -1,0 +1,104 @@
+/**
+ * A history made ready for learning: scaled, completed, its period and seasonal means found; and what was odd about it.
+ */
+import type { Site } from '@stillwell/protocol';
+import type { Series } from '../history/series.ts';
+import type { Surroundings } from '../quantise/float-model.ts';
+import type { Split } from '../requirements.ts';
+import { type Filled, fillHistory } from './fill.ts';
+import type { LearnInput } from './learn.ts';
+import { findPeriod } from './period.ts';
+import { findScalings, type Scaling } from './scaling.ts';
+import { seasonOf } from './season.ts';
+
+/** Ready for learning. */
+export interface Prepared {
+  readonly around: Omit<Surroundings, 'bank' | 'coverage' | 'boundsRate'>;
+  readonly filled: Filled;
+  readonly learnTicks: number;
+  readonly calibrateTicks: number;
+  readonly warnings: readonly string[];
+}
+
+/** A gap of this many ticks is long, whatever the horizon. */
+const LEAST_LONG_GAP = 6;
+
+/**
+ * Prepares.
+ *
+ * shapes  lattices (nc)
+ * units   as the parts state
+ * throws  TrainError 'history' naming a channel without readings, or where every signal is constant
+ * source  none
+ * cost    O(nc T log T)
+ */
+export function prepareHistory(
+  series: Series,
+  site: Site,
+  lattices: readonly { readonly step: number; readonly offset: number }[],
+  split: Split,
+): Prepared {
+  const learnTicks = split.learn.toTick - split.learn.fromTick;
+  const calibrateTicks = split.calibrate.toTick - split.calibrate.fromTick;
+  const scalings = findScalings(
+    series,
+    learnTicks,
+    lattices.map((lattice) => lattice.step),
+  );
+  const longGap = Math.max(LEAST_LONG_GAP, site.horizon);
+  const first = fillHistory(series, scalings, 0, longGap);
+  const learning = first.values.slice(0, series.signalCount).map((z) => z.subarray(0, learnTicks));
+  const period = findPeriod(learning, series.tickMs);
+  const filled = period > 0 ? fillHistory(series, scalings, period, longGap) : first;
+  return {
+    around: {
+      tickMs: series.tickMs,
+      signalCount: series.signalCount,
+      horizon: site.horizon,
+      scalings,
+      lattices,
+      season: seasonOf(filled, series.signalCount, series.firstTick, learnTicks, period),
+      warmupTicks: Math.max(2 * site.horizon, period, 32),
+    },
+    filled,
+    learnTicks,
+    calibrateTicks,
+    warnings: warningsOf(series, scalings, period),
+  };
+}
+
+/** The part of it that learning takes. */
+export function learnInput(prepared: Prepared): LearnInput {
+  const { around, filled, learnTicks, calibrateTicks } = prepared;
+  return {
+    filled,
+    signalCount: around.signalCount,
+    horizon: around.horizon,
+    periodTicks: around.season.periodTicks,
+    learnTicks,
+    calibrateTicks,
+  };
+}
+
+function warningsOf(series: Series, scalings: readonly Scaling[], period: number): string[] {
+  const warnings: string[] = [];
+  scalings.forEach((scaling, c) => {
+    if (scaling.isConstant) {
+      warnings.push(`${series.names[c]} keeps one value throughout the learning part; its forecast is its last value.`);
+    }
+    let beyond = 0;
+    for (const value of series.values[c]) if (value < scaling.clipLow || value > scaling.clipHigh) beyond++;
+    if (beyond > 0) {
+      warnings.push(
+        `${series.names[c]}: ${beyond} readings lie outside ${shorten(scaling.clipLow)} to ${shorten(scaling.clipHigh)}, far from the ` +
+          'rest; they were left out of learning, and the gateway clips them.',
+      );
+    }
+  });
+  if (period === 0) warnings.push('No period was found, so forecasts follow recent readings alone.');
+  return warnings;
+}
+
+function shorten(value: number): string {
+  return String(Number(value.toPrecision(4)));
+}

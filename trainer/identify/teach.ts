@@ -1,0 +1,84 @@
+/**
+ * Learning in one pass, or in two where readings are missing: a first model is fitted to the history completed by lines
+ * and seasons, then runs over it and puts its own one-step forecast wherever no reading was folded in (zero innovation,
+ * as on the gateway), and the map is learned once more from that. Spikes the guard would pass over are mended likewise.
+ */
+import type { Series } from '../history/series.ts';
+import { calibrate } from '../judge/calibrate.ts';
+import { replay } from '../judge/replay.ts';
+import { floatModel, openCalibration } from '../quantise/float-model.ts';
+import { floatFactors, type Learned } from '../quantise/quantise.ts';
+import type { Choice } from './choose.ts';
+import type { Filled } from './fill.ts';
+import { type LearnOutput, learn, learnAgain } from './learn.ts';
+import type { Moments } from './moments.ts';
+import { learnInput, type Prepared } from './prepare.ts';
+
+/** What was learned. */
+export interface Taught {
+  readonly choice: Choice;
+  readonly learned: Learned;
+  readonly calibrationMoments: Moments;
+  readonly warnings: readonly string[];
+}
+
+/** Share of missing readings in the learning part from which a second pass is worth its time. */
+const SECOND_PASS_SHARE = 0.002;
+/** Size of the passing model: its forecasts only bridge gaps. */
+const PASS_ORDER = 32;
+const PASS_BASIS = 12;
+const PASS_COVERAGE = 0.9;
+
+/**
+ * Learns.
+ *
+ * shapes  as LearnInput
+ * units   standardised
+ * throws  TrainError 'fit' from the solves
+ * source  fill by one's own forecast: Shumway & Stoffer, Journal of Time Series Analysis 3 (1982), means only
+ * cost    one or two passes of learning, and one replay between them
+ */
+export function teach(series: Series, prepared: Prepared): Taught {
+  const first = learn(learnInput(prepared));
+  const warnings = first.usesLongGaps
+    ? ['Long gaps cover more than half of the history; they had to be bridged and learned from.']
+    : [];
+  const base = { choice: first.choice, calibrationMoments: first.calibration, warnings };
+  if (missingShare(prepared) < SECOND_PASS_SHARE) return { ...base, learned: first.learned };
+  const filled = refill(series, prepared, first);
+  const again = learnAgain({ ...learnInput(prepared), filled }, first.choice, prepared.learnTicks);
+  return { ...base, learned: again };
+}
+
+function missingShare({ filled, around, learnTicks }: Prepared): number {
+  let missing = 0;
+  for (const read of filled.isRead.slice(0, around.signalCount)) {
+    for (let t = 0; t < learnTicks; t++) missing += 1 - read[t];
+  }
+  return missing / (around.signalCount * learnTicks);
+}
+
+function refill(series: Series, prepared: Prepared, first: LearnOutput): Filled {
+  const { around, filled, learnTicks, calibrateTicks } = prepared;
+  const { learned, choice } = first;
+  const order = Math.min(PASS_ORDER, learned.bottleneck.carried.length);
+  const factors = floatFactors(learned, order, Math.min(PASS_BASIS, around.horizon));
+  const surroundings = { ...around, bank: choice.bank, coverage: PASS_COVERAGE, boundsRate: 0.05 };
+  const open = floatModel(
+    factors,
+    surroundings,
+    openCalibration(around.scalings.length, around.signalCount * around.horizon),
+  );
+  const calibration = calibrate(
+    open,
+    series,
+    { fromTick: learnTicks, toTick: learnTicks + calibrateTicks },
+    PASS_COVERAGE,
+  );
+  const model = floatModel(factors, surroundings, calibration);
+  const values = filled.values.map((z) => z.slice());
+  replay(model, series, { fromTick: 0, toTick: learnTicks }, ({ at, state }) => {
+    for (let i = 0; i < around.signalCount; i++) if (state.started[i] === 1) values[i][at] = state.value[i];
+  });
+  return { ...filled, values };
+}

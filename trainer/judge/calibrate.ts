@@ -1,0 +1,89 @@
+/**
+ * What the bounds and the spike guard start from: errors of the rounded model on the calibration part, which it did not
+ * learn from. The gateway then keeps tracking; these are only its first values.
+ */
+import type { LinearModel } from '@stillwell/runtime/filter';
+import type { Series } from '../history/series.ts';
+import type { Calibration } from '../quantise/float-model.ts';
+import type { TickSpan } from '../span.ts';
+import { conformalRadius } from './coverage.ts';
+import { replay } from './replay.ts';
+
+/** Origins used are thinned to about this many: more does not move a 90 % quantile. */
+const MOST_ORIGINS = 4000;
+/** A reading this many robust standard deviations off is passed over … */
+const REJECT_SD = 10;
+/** … or this far beyond the jumps that stayed, where a plant jumps by itself. */
+const BEYOND_JUMPS = 1.2;
+const JUMP_QUANTILE = 0.995;
+const REJECT_MOST_TICKS = 3;
+/** Normal quantiles that make the median and the 90 % point of |error| estimates of a standard deviation. */
+const MEDIAN_FACTOR = 1.4826;
+const NINETY_FACTOR = 1 / 1.645;
+
+/**
+ * Calibrates.
+ *
+ * shapes  model before calibration (its guard open); span of indices into the series
+ * units   standardised
+ * throws  FilterError if the model does not fit the series
+ * source  robust standard deviation: Hampel, J. American Statistical Association 69 (1974); radii: split conformal
+ * cost    one replay of the span, one sort a cell
+ */
+export function calibrate(model: LinearModel, series: Series, span: TickSpan, coverage: number): Calibration {
+  const { signalCount: ny, channelCount: nc, horizon: H } = model;
+  const ticks = span.toTick - span.fromTick;
+  const every = Math.max(1, Math.ceil((ticks - H + 1) / MOST_ORIGINS));
+  const sizes = Array.from({ length: ny * H }, () => new Float64Array(Math.ceil(ticks / every) + 1));
+  const counts = new Int32Array(ny * H);
+  const first: number[][] = Array.from({ length: nc }, () => []);
+  const stayed: number[][] = Array.from({ length: ny }, () => []);
+  const errorAt = (i: number, median: Float64Array, at: number, h: number): number => {
+    const clipped = Math.min(model.clipHigh[i], Math.max(model.clipLow[i], series.values[i][at + h]));
+    return (clipped - median[i * H + h - 1]) / model.scale[i];
+  };
+  replay(model, series, { fromTick: span.fromTick - 1, toTick: span.toTick - 1 }, ({ at, state, median }) => {
+    for (let c = ny; c < nc; c++)
+      first[c].push(Math.abs(series.values[c][at + 1] / model.scale[c] - zOf(model, c, state.value[c])));
+    for (let i = 0; i < ny; i++) {
+      const error = errorAt(i, median, at, 1);
+      first[i].push(Math.abs(error));
+      if (H > 1 && at + 2 < span.toTick) {
+        const next = errorAt(i, median, at, 2);
+        stayed[i].push(error * next > 0 ? Math.min(Math.abs(error), Math.abs(next)) : 0);
+      }
+      if ((at - span.fromTick + 1) % every !== 0) continue;
+      for (let h = 1; h <= H && at + h < span.toTick; h++) {
+        const size = Math.abs(errorAt(i, median, at, h));
+        if (!Number.isNaN(size)) sizes[i * H + h - 1][counts[i * H + h - 1]++] = size;
+      }
+    }
+  });
+  const residualScale = Float64Array.from(first, (errors, c) =>
+    robustScale(errors, model.latticeStep[c] / model.scale[c]),
+  );
+  const jumps = stayed.map((errors, i) => quantile(errors, JUMP_QUANTILE) / residualScale[i]);
+  return {
+    residualScale,
+    radius: Float64Array.from(sizes, (cell, k) => conformalRadius(cell.subarray(0, counts[k]), coverage)),
+    rejectSd: Math.max(REJECT_SD, ...jumps.map((jump) => BEYOND_JUMPS * jump)),
+    rejectMaxTicks: REJECT_MOST_TICKS,
+  };
+}
+
+/** A standardised value back on the unscaled axis of `reading / scale`. */
+function zOf(model: LinearModel, channel: number, value: number): number {
+  return value + model.mean[channel] / model.scale[channel];
+}
+
+/** Never below what the lattice alone would give, a step spread evenly. */
+function robustScale(errors: readonly number[], step: number): number {
+  const floor = step / Math.sqrt(12);
+  return Math.max(MEDIAN_FACTOR * quantile(errors, 0.5), NINETY_FACTOR * quantile(errors, 0.9), floor);
+}
+
+/** 0 where there is no error to go by. */
+function quantile(errors: readonly number[], share: number): number {
+  const sorted = Float64Array.from(errors.filter((error) => !Number.isNaN(error))).sort();
+  return sorted.length === 0 ? 0 : sorted[Math.min(sorted.length - 1, Math.floor(share * sorted.length))];
+}

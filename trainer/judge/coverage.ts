@@ -1,0 +1,48 @@
+/**
+ * How often readings fell inside the bounds, and how wide those were; and the half-widths that calibration asks for.
+ */
+
+/** Running coverage and width; entry i·H + h - 1. */
+export class Coverage {
+  readonly #count: Float64Array;
+  readonly #inside: Float64Array;
+  readonly #width: Float64Array;
+
+  constructor(cells: number) {
+    this.#count = new Float64Array(cells);
+    this.#inside = new Float64Array(cells);
+    this.#width = new Float64Array(cells);
+  }
+
+  /** Adds one reading against its bounds; a reading on a bound is inside. */
+  add(cell: number, reading: number, lower: number, upper: number): void {
+    this.#count[cell]++;
+    this.#width[cell] += upper - lower;
+    if (reading >= lower && reading <= upper) this.#inside[cell]++;
+  }
+
+  /** Share inside; NaN where nothing was counted. */
+  share(): Float64Array {
+    return this.#inside.map((inside, cell) => inside / this.#count[cell]);
+  }
+
+  /** Mean width in the signal's unit. */
+  width(): Float64Array {
+    return this.#width.map((sum, cell) => sum / this.#count[cell]);
+  }
+}
+
+/**
+ * Half-width that holds the stated share of future errors, from errors of the past.
+ *
+ * shapes  sizes (n) absolute errors, overwritten by sorting
+ * units   as the errors
+ * throws  nothing; 0 where there are no errors
+ * source  split conformal prediction: the ⌈(n + 1) coverage⌉-th smallest; Papadopoulos and others, ECML (2002)
+ * cost    O(n log n)
+ */
+export function conformalRadius(sizes: Float64Array, coverage: number): number {
+  if (sizes.length === 0) return 0;
+  sizes.sort();
+  return sizes[Math.min(sizes.length, Math.ceil((sizes.length + 1) * coverage)) - 1];
+}

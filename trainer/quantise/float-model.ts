@@ -1,0 +1,91 @@
+/**
+ * A model to compute with, from learned factors, before there is a bundle: for calibration, and for the audit.
+ */
+import type { LinearModel } from '@stillwell/runtime/filter';
+import { type Bank, featureCount } from '../identify/bank.ts';
+import type { Scaling } from '../identify/scaling.ts';
+import type { Season } from '../identify/season.ts';
+import type { Factors } from './quantise.ts';
+
+/** Everything around the factors. */
+export interface Surroundings {
+  readonly tickMs: number;
+  readonly signalCount: number;
+  readonly horizon: number;
+  readonly bank: Bank;
+  /** (nc) */
+  readonly scalings: readonly Scaling[];
+  readonly lattices: readonly { readonly step: number; readonly offset: number }[];
+  readonly season: Season;
+  readonly coverage: number;
+  readonly boundsRate: number;
+  readonly warmupTicks: number;
+}
+
+/** What calibration finds; `OPEN` before it has run. */
+export interface Calibration {
+  /** (nc) standardised */
+  readonly residualScale: Float64Array;
+  /** (ny × H) standardised */
+  readonly radius: Float64Array;
+  readonly rejectSd: number;
+  readonly rejectMaxTicks: number;
+}
+
+/**
+ * Joins factors and surroundings.
+ *
+ * shapes  as LinearModel
+ * units   as LinearModel
+ * throws  nothing; the caller checks with checkModel where it must
+ * source  none
+ * cost    copies
+ */
+export function floatModel(factors: Factors, around: Surroundings, calibration: Calibration): LinearModel {
+  const { scalings, lattices, bank, season } = around;
+  const perChannel = (pick: (scaling: Scaling) => number): Float64Array => Float64Array.from(scalings, pick);
+  return {
+    kind: 'linear',
+    tickMs: around.tickMs,
+    channelCount: scalings.length,
+    signalCount: around.signalCount,
+    featureCount: featureCount(bank),
+    order: factors.order,
+    basisCount: factors.basisCount,
+    horizon: around.horizon,
+    decays: Float64Array.from(bank.decays),
+    resonatorRe: Float64Array.from(bank.resonators, ([re]) => re),
+    resonatorIm: Float64Array.from(bank.resonators, ([, im]) => im),
+    lags: Int32Array.from(bank.lags),
+    featureScale: Float64Array.from(factors.exponents, (exponent) => 2 ** exponent),
+    bottleneck: factors.bottleneck,
+    readout: factors.readout,
+    horizonBasis: factors.horizonBasis,
+    mean: perChannel((scaling) => scaling.mean),
+    scale: perChannel((scaling) => scaling.scale),
+    latticeStep: Float64Array.from(lattices, (lattice) => lattice.step),
+    latticeOffset: Float64Array.from(lattices, (lattice) => lattice.offset),
+    clipLow: perChannel((scaling) => scaling.clipLow),
+    clipHigh: perChannel((scaling) => scaling.clipHigh),
+    residualScale: calibration.residualScale,
+    seasonalPeriod: season.periodTicks,
+    seasonalBins: season.bins,
+    seasonal: season.means,
+    coverage: around.coverage,
+    boundsRate: around.boundsRate,
+    radius: calibration.radius,
+    rejectSd: calibration.rejectSd,
+    rejectMaxTicks: calibration.rejectMaxTicks,
+    warmupTicks: around.warmupTicks,
+  };
+}
+
+/** Before calibration: no reading is passed over, bounds of no width. */
+export function openCalibration(channelCount: number, cells: number): Calibration {
+  return {
+    residualScale: new Float64Array(channelCount).fill(1),
+    radius: new Float64Array(cells),
+    rejectSd: 1e12,
+    rejectMaxTicks: 0,
+  };
+}
