@@ -4,26 +4,32 @@
  */
 import type { Bundle } from './bundle.ts';
 import { checkBundle } from './bundle-check.ts';
-import { bundleSchema } from './bundle-schema.ts';
+import { type BundleDocument, bundleSchema } from './bundle-schema.ts';
+import { fromColumns, toColumns } from './channel-columns.ts';
 import { decode, encode } from './codec.ts';
 import { sha256 } from './digest.ts';
 import { ProtocolError } from './errors.ts';
 import { deepFreeze } from './freeze.ts';
 import { formatFault, listFaults, showValue } from './issue.ts';
 import { MAX_BUNDLE_BYTES } from './limits.ts';
+import { formatPath } from './path.ts';
 import { ARITHMETIC, BUNDLE_FORMAT } from './version.ts';
 
 const fieldsAt = (path: readonly PropertyKey[]): readonly string[] =>
   path.length === 0 ? Object.keys(bundleSchema.shape) : [];
 
-const checkedBundle = (value: unknown): Bundle => {
+const checkedDocument = (value: unknown): BundleDocument => {
   const parsed = bundleSchema.safeParse(value);
-  if (!parsed.success) {
-    const fault = listFaults(parsed.error, value, fieldsAt)[0]!;
-    throw new ProtocolError('schema', `bundle document: ${formatFault(fault)}`, { details: { path: fault.path } });
-  }
-  checkBundle(parsed.data);
-  return parsed.data;
+  if (parsed.success) return parsed.data;
+  const fault = listFaults(parsed.error, value, fieldsAt)[0]!;
+  const details = { path: formatPath(fault.path) };
+  throw new ProtocolError('schema', `bundle document: ${formatFault(fault)}`, { details });
+};
+
+const toBundle = (document: BundleDocument): Bundle => {
+  const bundle = { ...document, channels: fromColumns(document.channels) };
+  checkBundle(bundle);
+  return bundle;
 };
 
 /** Numbers are looked at before the schema: another format has other fields, and its number is the better message. */
@@ -47,7 +53,9 @@ const checkNumbers = (value: unknown): void => {
  */
 export const encodeBundle = (bundle: Bundle): Uint8Array => {
   checkNumbers(bundle);
-  const document = encode(checkedBundle(bundle));
+  const fields = checkedDocument({ ...bundle, channels: toColumns(bundle.channels) });
+  toBundle(fields);
+  const document = encode(fields);
   if (document.length > MAX_BUNDLE_BYTES) {
     throw new ProtocolError(
       'size',
@@ -68,7 +76,7 @@ export const encodeBundle = (bundle: Bundle): Uint8Array => {
 export const decodeBundle = (document: Uint8Array): Bundle => {
   const value = decode(document, { maxBytes: MAX_BUNDLE_BYTES });
   checkNumbers(value);
-  return deepFreeze(checkedBundle(value));
+  return deepFreeze(toBundle(checkedDocument(value)));
 };
 
 /** The name of a bundle everywhere: SHA-256 of its document, whatever envelope it travels in; 32 bytes. */

@@ -4,7 +4,8 @@
 import { z } from 'zod';
 import { binary } from './binary.ts';
 import type { Bundle } from './bundle.ts';
-import { MAX_CHANNELS, MAX_HORIZON, MAX_LAG_TICKS, MAX_TICK_MS, MIN_TICK_MS } from './limits.ts';
+import { type ChannelColumns, channelColumnsSchema } from './channel-columns.ts';
+import { MAX_HORIZON, MAX_LAG_TICKS, MAX_TICK_MS, MIN_TICK_MS } from './limits.ts';
 import { isName, NAME_RULE } from './name.ts';
 
 const bytes = binary();
@@ -17,7 +18,6 @@ const seed = z
   .min(0)
   .max(2 ** 32 - 1);
 const count = z.int().min(0);
-const level = z.number().nullable();
 const share = z.number().gt(0).lt(1);
 
 /** A matrix as it stands in a document; lengths are checked where the shape is known. */
@@ -27,23 +27,6 @@ export const tensorSchema = z.strictObject({
   cols: count,
   scales: bytes,
   data: bytes,
-});
-
-/** Limits of a channel, in its unit. */
-export const bundleLimitsSchema = z.strictObject({ highHigh: level, high: level, low: level, lowLow: level });
-
-/** One signal or input. */
-export const channelSchema = z.strictObject({
-  name,
-  role: z.enum(['signal', 'input']),
-  unit: z.string().min(1).max(40),
-  aggregate: z.enum(['last', 'mean', 'min', 'max', 'sum', 'increment']),
-  lattice: z.strictObject({ step: positive, offset: z.number() }),
-  clip: z.tuple([z.number(), z.number()]),
-  mean: z.number(),
-  scale: positive,
-  limits: bundleLimitsSchema,
-  residualScale: positive,
 });
 
 /** Tensors and numbers of the linear kind. */
@@ -102,6 +85,9 @@ export const probeSchema = z.strictObject({
   last: z.array(z.number()).max(MAX_HORIZON),
 });
 
+/** A bundle as it stands in a document: channels by column. */
+export type BundleDocument = Omit<Bundle, 'channels'> & { readonly channels: ChannelColumns };
+
 /** The whole document. */
 export const bundleSchema = z.strictObject({
   format: z.int(),
@@ -113,7 +99,7 @@ export const bundleSchema = z.strictObject({
   madeAtMs: time,
   tickMs: z.int().min(MIN_TICK_MS).max(MAX_TICK_MS),
   horizon: z.int().min(1).max(MAX_HORIZON),
-  channels: z.array(channelSchema).min(1).max(MAX_CHANNELS),
+  channels: channelColumnsSchema,
   linear: linearSchema,
   seasonal: seasonalSchema,
   bounds: boundsSchema,
@@ -123,4 +109,4 @@ export const bundleSchema = z.strictObject({
   provenance: provenanceSchema,
   judge: judgeSchema,
   probe: probeSchema,
-}) satisfies z.ZodType<Bundle>;
+}) satisfies z.ZodType<BundleDocument>;

@@ -68,6 +68,7 @@ export interface JudgeTable {
   readonly override: string | null;
 }
 
+/** A model, how far it may be trusted, and where it came from. */
 export interface Bundle {
   readonly format: number;
   readonly arithmetic: number;

@@ -49,7 +49,8 @@ export const encode = (value: unknown): Uint8Array => packValue(value);
 export const decode = (bytes: Uint8Array, limits: Partial<ScanLimits> = {}, form: ScanForm = 'own'): unknown => {
   scanMessagePack(bytes, { ...DEFAULT_LIMITS, ...limits }, form);
   try {
-    return ownBytes(unpackr.unpack(bytes));
+    // A view of its own: the library hangs a property on the object it reads from.
+    return ownBytes(unpackr.unpack(new Uint8Array(bytes.buffer, bytes.byteOffset, bytes.byteLength)));
   } catch (cause) {
     throw new ProtocolError('decode', `MessagePack data of ${bytes.length} bytes passed the scan but not the decoder`, {
       cause,
