@@ -72,18 +72,19 @@ export function bankConstants(model: LinearModel): BankConstants {
 }
 
 /**
- * Sets a channel's memories to their steady state for a past that was always `value`.
+ * Sets a channel's memories to their steady state for a past that always was its value of now.
  *
- * shapes  memory (nc × memoryCount), ring (nc × ringLength)
- * units   value standardised
+ * shapes  memory (nc × memoryCount), ring (nc × ringLength), values (nc)
+ * units   standardised
  */
 export function settleChannel(
   bank: BankConstants,
   memory: Float64Array,
   ring: Float64Array,
+  values: Float64Array,
   channel: number,
-  value: number,
 ): void {
+  const value = values[channel];
   const at = channel * bank.memoryCount;
   for (let k = 0; k < bank.decayCount; k++) memory[at + k] = value;
   let m = at + bank.decayCount;
@@ -96,19 +97,20 @@ export function settleChannel(
 }
 
 /**
- * Moves a channel's exponential means and resonators one tick on with the folded-in `value`.
+ * Moves a channel's exponential means and resonators one tick on with its folded-in value.
  *
- * shapes  memory (nc × memoryCount)
- * units   value standardised
+ * shapes  memory (nc × memoryCount), values (nc)
+ * units   standardised
  * cost    O(memoryCount); allocates nothing
  */
 export function advanceChannel(
   model: LinearModel,
   bank: BankConstants,
   memory: Float64Array,
+  values: Float64Array,
   channel: number,
-  value: number,
 ): void {
+  const value = values[channel];
   let m = channel * bank.memoryCount;
   for (let k = 0; k < bank.decayCount; k++, m++) memory[m] = model.decays[k] * memory[m] + bank.decayGain[k] * value;
   for (let k = 0; k < bank.resonatorCount; k++, m += 2) {
@@ -124,8 +126,8 @@ export function advanceChannel(
 /**
  * Writes a channel's scaled, clipped features.
  *
- * shapes  memory (nc × memoryCount), ring (nc × ringLength), out (nc·F), filled from channel · F
- * units   value (of this tick) standardised; `ringAt` the slot of the oldest value, where the next one will go
+ * shapes  memory (nc × memoryCount), ring (nc × ringLength), values (nc) of this tick, out (nc·F), filled from channel · F
+ * units   standardised; `ringAt` is the slot of the oldest value, where the next one will go
  * cost    O(F); allocates nothing
  */
 export function writeFeatures(
@@ -134,29 +136,27 @@ export function writeFeatures(
   memory: Float64Array,
   ring: Float64Array,
   ringAt: number,
+  values: Float64Array,
   channel: number,
-  value: number,
   out: Float64Array,
 ): void {
+  const value = values[channel];
   const scale = model.featureScale;
   let m = channel * bank.memoryCount;
   let f = channel * model.featureCount;
-  for (let k = 0; k < bank.decayCount; k++, m++, f++) out[f] = bounded((memory[m] - value) * scale[f]);
+  for (let k = 0; k < bank.decayCount; k++, m++, f++) out[f] = (memory[m] - value) * scale[f];
   for (let k = 0; k < bank.resonatorCount; k++, m += 2, f += 2) {
-    out[f] = bounded((memory[m] - bank.steadyRe[k] * value) * scale[f]);
-    out[f + 1] = bounded((memory[m + 1] - bank.steadyIm[k] * value) * scale[f + 1]);
+    out[f] = (memory[m] - bank.steadyRe[k] * value) * scale[f];
+    out[f + 1] = (memory[m + 1] - bank.steadyIm[k] * value) * scale[f + 1];
   }
   const start = channel * bank.ringLength;
   for (let k = 0; k < model.lags.length; k++, f++) {
     let slot = ringAt - model.lags[k];
     if (slot < 0) slot += bank.ringLength;
-    out[f] = bounded((ring[start + slot] - value) * scale[f]);
+    out[f] = (ring[start + slot] - value) * scale[f];
   }
-}
-
-/** Clips a scaled feature. */
-function bounded(feature: number): number {
-  if (feature > FEATURE_LIMIT) return FEATURE_LIMIT;
-  if (feature < -FEATURE_LIMIT) return -FEATURE_LIMIT;
-  return feature;
+  for (let k = channel * model.featureCount; k < f; k++) {
+    if (out[k] > FEATURE_LIMIT) out[k] = FEATURE_LIMIT;
+    else if (out[k] < -FEATURE_LIMIT) out[k] = -FEATURE_LIMIT;
+  }
 }

@@ -1,38 +1,15 @@
 /**
- * The two dense kernels of the filter, row-major float64. Summation order is part of the arithmetic version: four partial
+ * The one dense kernel of the filter, row-major float64. Summation order is part of the arithmetic version: four partial
  * sums over the indices 0, 1, 2, 3 modulo 4, each in ascending order, then (s0 + s1) + (s2 + s3). Four, because a single
  * running sum waits for each addition; the order is fixed, because floating addition is not associative and two machines
- * must agree to the bit. Not for large matrices: no blocking, rows are walked once.
+ * must agree to the bit. Results go to a buffer and never through a return value, since a float64 that crosses a call
+ * which is not inlined is put on the heap. Not for large matrices: no blocking, rows are walked once.
  */
 
 /**
- * Product of two stretches of `count` numbers, `a` from `aAt` and `b` from `bAt`, in the order stated above.
+ * out[outAt + i] = row i of matrix × vector, in the order stated above.
  *
- * shapes  a (≥ aAt + count), b (≥ bAt + count); not checked here, callers are
- * cost    O(count); allocates nothing
- */
-export function dot(a: Float64Array, aAt: number, b: Float64Array, bAt: number, count: number): number {
-  let s0 = 0;
-  let s1 = 0;
-  let s2 = 0;
-  let s3 = 0;
-  const whole = count - (count % 4);
-  for (let j = 0; j < whole; j += 4) {
-    s0 += a[aAt + j] * b[bAt + j];
-    s1 += a[aAt + j + 1] * b[bAt + j + 1];
-    s2 += a[aAt + j + 2] * b[bAt + j + 2];
-    s3 += a[aAt + j + 3] * b[bAt + j + 3];
-  }
-  if (whole < count) s0 += a[aAt + whole] * b[bAt + whole];
-  if (whole + 1 < count) s1 += a[aAt + whole + 1] * b[bAt + whole + 1];
-  if (whole + 2 < count) s2 += a[aAt + whole + 2] * b[bAt + whole + 2];
-  return s0 + s1 + (s2 + s3);
-}
-
-/**
- * out = matrix × vector, each row by `dot`.
- *
- * shapes  matrix (rows × cols), vector (cols), out (rows)
+ * shapes  matrix (rows × cols), vector (cols numbers from vectorAt), out (rows numbers from outAt); not checked here
  * cost    O(rows · cols); allocates nothing
  */
 export function multiply(
@@ -40,7 +17,26 @@ export function multiply(
   rows: number,
   cols: number,
   vector: Float64Array,
+  vectorAt: number,
   out: Float64Array,
+  outAt: number,
 ): void {
-  for (let row = 0; row < rows; row++) out[row] = dot(matrix, row * cols, vector, 0, cols);
+  const whole = cols - (cols % 4);
+  for (let row = 0; row < rows; row++) {
+    const at = row * cols;
+    let s0 = 0;
+    let s1 = 0;
+    let s2 = 0;
+    let s3 = 0;
+    for (let j = 0; j < whole; j += 4) {
+      s0 += matrix[at + j] * vector[vectorAt + j];
+      s1 += matrix[at + j + 1] * vector[vectorAt + j + 1];
+      s2 += matrix[at + j + 2] * vector[vectorAt + j + 2];
+      s3 += matrix[at + j + 3] * vector[vectorAt + j + 3];
+    }
+    if (whole < cols) s0 += matrix[at + whole] * vector[vectorAt + whole];
+    if (whole + 1 < cols) s1 += matrix[at + whole + 1] * vector[vectorAt + whole + 1];
+    if (whole + 2 < cols) s2 += matrix[at + whole + 2] * vector[vectorAt + whole + 2];
+    out[outAt + row] = s0 + s1 + (s2 + s3);
+  }
 }

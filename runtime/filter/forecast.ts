@@ -4,58 +4,74 @@
  * size up to age H and falls linearly to nothing at age 2H, because iterating a fitted recursion without readings need
  * not be stable. Step 1 of the path is the number that stands in for a missing reading at the next tick.
  */
-import { dot } from './dense.ts';
+import { multiply } from './dense.ts';
 import type { LinearModel } from './model.ts';
 import type { FilterState } from './state.ts';
 
 /**
- * Mean of a signal at a tick by its phase in the period.
+ * Forecasts of one signal for steps 1 … `steps`, faded and clipped.
  *
- * units  standardised
+ * shapes  out, `steps` numbers from `at`
+ * units   standardised
+ * cost    O(steps · r); allocates nothing
  */
-export function seasonalMean(model: LinearModel, signal: number, tick: number): number {
-  const period = model.seasonalPeriod;
-  const at = signal * model.seasonalBins;
-  if (period === 0) return model.seasonal[at];
-  const phase = tick % period;
-  return model.seasonal[at + Math.floor(((phase < 0 ? phase + period : phase) * model.seasonalBins) / period)];
-}
-
-/**
- * Forecast of one signal `step` ticks ahead, clipped.
- *
- * units  standardised
- * cost   O(r); allocates nothing
- */
-export function stepAhead(model: LinearModel, state: FilterState, signal: number, step: number): number {
+export function stepsAhead(
+  model: LinearModel,
+  state: FilterState,
+  signal: number,
+  steps: number,
+  out: Float64Array,
+  at: number,
+): void {
   const r = model.basisCount;
-  let z = state.value[signal] + dot(model.horizonBasis, (step - 1) * r, state.coefficients, signal * r, r);
-  const age = state.age[signal];
-  if (age + step > model.horizon) {
-    const mean = seasonalMean(model, signal, state.tick + step);
-    z = mean + keptDistance(model.horizon, age, step) * (z - mean);
+  multiply(model.horizonBasis, steps, r, state.coefficients, signal * r, out, at);
+  const now = state.value[signal];
+  for (let h = 0; h < steps; h++) out[at + h] = now + out[at + h];
+  if (state.age[signal] + steps > model.horizon) fade(model, state, signal, steps, out, at);
+  const low = state.low[signal];
+  const high = state.high[signal];
+  for (let h = 0; h < steps; h++) {
+    if (out[at + h] < low) out[at + h] = low;
+    else if (out[at + h] > high) out[at + h] = high;
   }
-  if (z < state.low[signal]) return state.low[signal];
-  if (z > state.high[signal]) return state.high[signal];
-  return z;
 }
 
-/** Share of the distance to the seasonal mean at `age` that is left `step` ticks later; 1 up to the horizon, 0 from twice it. */
-function keptDistance(horizon: number, age: number, step: number): number {
-  const end = 2 * horizon;
-  if (age >= end) return 0;
-  const later = Math.min(end, Math.max(horizon, age + step));
-  return (end - later) / (end - Math.max(horizon, age));
+/** Leaves, of the distance to the seasonal mean, the share that belongs to the age of each step; see the file head. */
+function fade(
+  model: LinearModel,
+  state: FilterState,
+  signal: number,
+  steps: number,
+  out: Float64Array,
+  at: number,
+): void {
+  const H = model.horizon;
+  const end = 2 * H;
+  const age = state.age[signal];
+  const left = end - Math.max(H, age);
+  for (let h = 1; h <= steps; h++) {
+    if (age + h <= H) continue;
+    const mean = model.seasonal[seasonalCell(model, signal, state.tick + h)];
+    // The state has itself been faded up to `age`: only what is lost since counts.
+    const kept = left === 0 ? 0 : Math.max(0, end - (age + h)) / left;
+    out[at + h - 1] = mean + kept * (out[at + h - 1] - mean);
+  }
 }
 
-/**
- * From standardised to the signal's unit, inside the clips to the last bit.
- *
- * units  z standardised; the result in units of the channel
- */
-export function inUnits(model: LinearModel, channel: number, z: number): number {
-  const y = model.mean[channel] + model.scale[channel] * z;
-  return Math.min(model.clipHigh[channel], Math.max(model.clipLow[channel], y));
+/** Place in the seasonal table of a signal at a tick, by the tick's phase in the period. */
+function seasonalCell(model: LinearModel, signal: number, tick: number): number {
+  const { seasonalPeriod: period, seasonalBins: bins } = model;
+  if (period === 0) return signal * bins;
+  return signal * bins + Math.floor(((tick % period) * bins) / period);
+}
+
+/** Turns standardised numbers of one channel into its unit, in place, inside the clips to the last bit. */
+function toUnits(model: LinearModel, channel: number, values: Float64Array, at: number, count: number): void {
+  const mean = model.mean[channel];
+  const scale = model.scale[channel];
+  const low = model.clipLow[channel];
+  const high = model.clipHigh[channel];
+  for (let k = at; k < at + count; k++) values[k] = Math.min(high, Math.max(low, mean + scale * values[k]));
 }
 
 /**
@@ -68,8 +84,25 @@ export function inUnits(model: LinearModel, channel: number, z: number): number 
 export function forecastPath(model: LinearModel, state: FilterState, median: Float64Array): void {
   const H = model.horizon;
   for (let i = 0; i < model.signalCount; i++) {
-    for (let h = 1; h <= H; h++) median[i * H + h - 1] = inUnits(model, i, stepAhead(model, state, i, h));
+    stepsAhead(model, state, i, H, median, i * H);
+    toUnits(model, i, median, i * H, H);
   }
+}
+
+/**
+ * One-step forecast of every channel: signals by the model, inputs by their last value. Before the first tick, the mean.
+ *
+ * shapes  out (nc)
+ * units   standardised
+ * cost    O(ny · r); allocates nothing
+ */
+export function predictStandardised(model: LinearModel, state: FilterState, out: Float64Array): void {
+  if (state.tick < 0) {
+    out.fill(0);
+    return;
+  }
+  for (let i = 0; i < model.signalCount; i++) stepsAhead(model, state, i, 1, out, i);
+  for (let c = model.signalCount; c < model.channelCount; c++) out[c] = state.value[c];
 }
 
 /**
@@ -81,7 +114,6 @@ export function forecastPath(model: LinearModel, state: FilterState, median: Flo
  * cost    O(ny · r); allocates nothing
  */
 export function predictNext(model: LinearModel, state: FilterState, out: Float64Array): void {
-  const ny = model.signalCount;
-  for (let i = 0; i < ny; i++) out[i] = inUnits(model, i, stepAhead(model, state, i, 1));
-  for (let c = ny; c < model.channelCount; c++) out[c] = inUnits(model, c, state.value[c]);
+  predictStandardised(model, state, out);
+  for (let c = 0; c < model.channelCount; c++) toUnits(model, c, out, c, 1);
 }

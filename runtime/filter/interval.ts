@@ -107,19 +107,28 @@ export function trackBounds(model: LinearModel, bounds: Bounds, state: FilterSta
   for (let h = 1; h <= H; h++) {
     let slot = ((h * (h - 1)) / 2 + (tick % h)) * ny;
     for (let i = 0; i < ny; i++, slot++) {
-      if (state.observed[i] !== MISSING) score(model, bounds, i * H + h - 1, i, state.reading[i] - issued[slot]);
+      if (state.observed[i] !== MISSING) score(model, bounds, state, i, h, slot);
       const isScored = isWarm && state.age[i] === 0;
       issued[slot] = isScored ? (medianPath[i * H + h - 1] - model.mean[i]) / model.scale[i] : Number.NaN;
     }
   }
 }
 
-/** Moves one radius by one error; NaN (no forecast was under way) moves nothing. */
-function score(model: LinearModel, bounds: Bounds, cell: number, signal: number, error: number): void {
+/** Moves one radius by the error of the forecast that stands in `slot`, if one does. */
+function score(
+  model: LinearModel,
+  bounds: Bounds,
+  state: FilterState,
+  signal: number,
+  step: number,
+  slot: number,
+): void {
+  const error = state.reading[signal] - bounds.issued[slot];
   if (error - error !== 0) return;
+  const cell = signal * model.horizon + step - 1;
   const q = bounds.radius[cell];
-  const step = model.boundsRate * Math.min(q, bounds.calibrated[cell]);
-  const moved = q + step * (Math.abs(error) > q ? model.coverage : model.coverage - 1);
+  const stride = model.boundsRate * Math.min(q, bounds.calibrated[cell]);
+  const moved = q + stride * (Math.abs(error) > q ? model.coverage : model.coverage - 1);
   bounds.radius[cell] = Math.min(bounds.ceiling[signal], Math.max(bounds.floor[cell], moved));
 }
 

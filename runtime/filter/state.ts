@@ -24,6 +24,8 @@ export interface FilterState {
   tick: number;
   /** (nc) value folded in last: the reading, or what stood in for it. */
   readonly value: Float64Array;
+  /** (nc) one-step forecast that the last tick was held against. */
+  readonly predicted: Float64Array;
   /** (nc) reading of the last tick, clipped; NaN where missing. */
   readonly reading: Float64Array;
   /** (nc) reading − one-step forecast, NaN where missing; present also for a reading passed over. */
@@ -67,6 +69,7 @@ export function createState(model: LinearModel): FilterState {
   return {
     tick: -1,
     value: new Float64Array(nc),
+    predicted: new Float64Array(nc),
     reading: new Float64Array(nc).fill(Number.NaN),
     innovation: new Float64Array(nc).fill(Number.NaN),
     observed: new Uint8Array(nc),
@@ -94,8 +97,8 @@ export function createState(model: LinearModel): FilterState {
 export function refresh(model: LinearModel, state: FilterState): void {
   const { bank, memory, ring, ringAt, value, features } = state;
   for (let c = 0; c < model.channelCount; c++) {
-    writeFeatures(model, bank, memory, ring, ringAt, c, value[c], features);
+    writeFeatures(model, bank, memory, ring, ringAt, value, c, features);
   }
-  multiply(model.bottleneck, model.order, features.length, features, state.x);
-  multiply(model.readout, state.coefficients.length, model.order, state.x, state.coefficients);
+  multiply(model.bottleneck, model.order, features.length, features, 0, state.x, 0);
+  multiply(model.readout, state.coefficients.length, model.order, state.x, 0, state.coefficients, 0);
 }

@@ -5,7 +5,7 @@
  */
 import { advanceChannel, settleChannel } from './bank.ts';
 import { FilterError } from './errors.ts';
-import { stepAhead } from './forecast.ts';
+import { predictStandardised } from './forecast.ts';
 import type { LinearModel } from './model.ts';
 import { type FilterState, FOLDED, MISSING, PASSED_OVER, refresh } from './state.ts';
 
@@ -24,23 +24,15 @@ import { type FilterState, FOLDED, MISSING, PASSED_OVER, refresh } from './state
  */
 export function update(model: LinearModel, state: FilterState, tick: number, readings: Float64Array): void {
   checkTurn(model, state, tick, readings);
-  const isFirst = state.tick < 0;
-  if (!isFirst) pushRing(model, state);
+  predictStandardised(model, state, state.predicted);
+  if (state.tick >= 0) pushRing(model, state);
   for (let c = 0; c < model.channelCount; c++) {
-    const predicted = predictedValue(model, state, c, isFirst);
-    const y = readings[c];
     // y − y is 0 for finite y alone.
-    if (y - y !== 0) missed(model, state, c, predicted);
-    else observe(model, state, c, predicted, y);
+    if (readings[c] - readings[c] !== 0) missed(model, state, c);
+    else observe(model, state, c, readings);
   }
   state.tick = tick;
   refresh(model, state);
-}
-
-/** One-step forecast of a channel, standardised; a channel starts from its mean. */
-function predictedValue(model: LinearModel, state: FilterState, channel: number, isFirst: boolean): number {
-  if (isFirst) return 0;
-  return channel < model.signalCount ? stepAhead(model, state, channel, 1) : state.value[channel];
 }
 
 /** Puts the value of the tick before into every ring, over the oldest. */
@@ -51,16 +43,15 @@ function pushRing(model: LinearModel, state: FilterState): void {
   state.ringAt = state.ringAt + 1 === length ? 0 : state.ringAt + 1;
 }
 
-function observe(model: LinearModel, state: FilterState, c: number, predicted: number, y: number): void {
-  const clipped = Math.min(model.clipHigh[c], Math.max(model.clipLow[c], y));
-  const z = Math.min(state.high[c], Math.max(state.low[c], (clipped - model.mean[c]) / model.scale[c]));
-  const innovation = z - predicted;
+function observe(model: LinearModel, state: FilterState, c: number, readings: Float64Array): void {
+  const y = Math.min(model.clipHigh[c], Math.max(model.clipLow[c], readings[c]));
+  const z = Math.min(state.high[c], Math.max(state.low[c], (y - model.mean[c]) / model.scale[c]));
   state.reading[c] = z;
-  state.innovation[c] = innovation;
-  if (isPassedOver(model, state, c, innovation)) {
+  state.innovation[c] = z - state.predicted[c];
+  if (isPassedOver(model, state, c)) {
     state.passed[c]++;
     state.observed[c] = PASSED_OVER;
-    replace(model, state, c, predicted);
+    replace(model, state, c);
     return;
   }
   state.observed[c] = FOLDED;
@@ -68,30 +59,31 @@ function observe(model: LinearModel, state: FilterState, c: number, predicted: n
   state.passed[c] = 0;
   state.value[c] = z;
   if (state.started[c] === 1) {
-    advanceChannel(model, state.bank, state.memory, c, z);
+    advanceChannel(model, state.bank, state.memory, state.value, c);
   } else {
     state.started[c] = 1;
-    settleChannel(state.bank, state.memory, state.ring, c, z);
+    settleChannel(state.bank, state.memory, state.ring, state.value, c);
   }
 }
 
-function isPassedOver(model: LinearModel, state: FilterState, c: number, innovation: number): boolean {
+function isPassedOver(model: LinearModel, state: FilterState, c: number): boolean {
   if (c >= model.signalCount || state.started[c] === 0 || state.passed[c] >= model.rejectMaxTicks) return false;
-  return Math.abs(innovation) > model.rejectSd * model.residualScale[c] * Math.sqrt(state.age[c] + 1);
+  const limit = model.rejectSd * model.residualScale[c] * Math.sqrt(state.age[c] + 1);
+  return Math.abs(state.innovation[c]) > limit;
 }
 
-function missed(model: LinearModel, state: FilterState, c: number, predicted: number): void {
+function missed(model: LinearModel, state: FilterState, c: number): void {
   state.reading[c] = Number.NaN;
   state.innovation[c] = Number.NaN;
   state.observed[c] = MISSING;
-  replace(model, state, c, predicted);
+  replace(model, state, c);
 }
 
 /** Folds the one-step forecast in, in the place of a reading. */
-function replace(model: LinearModel, state: FilterState, c: number, predicted: number): void {
+function replace(model: LinearModel, state: FilterState, c: number): void {
   if (state.age[c] < 2 * model.horizon) state.age[c]++;
-  state.value[c] = predicted;
-  advanceChannel(model, state.bank, state.memory, c, predicted);
+  state.value[c] = state.predicted[c];
+  advanceChannel(model, state.bank, state.memory, state.value, c);
 }
 
 function checkTurn(model: LinearModel, state: FilterState, tick: number, readings: Float64Array): void {

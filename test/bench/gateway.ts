@@ -1,0 +1,8 @@
+/** Suite `gateway`: what running a site costs. */
+import { filterRows } from './filter-step.ts';
+import type { BenchOptions, Row } from './harness.ts';
+
+/** Rows of the suite. */
+export async function* rows(options: BenchOptions): AsyncIterable<Row> {
+  yield* filterRows(options);
+}
