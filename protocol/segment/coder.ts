@@ -74,12 +74,15 @@ export class BitEncoder implements BitCoder {
 /** Reads decisions back; zeros stand after the end, and more than 4 of them are a refusal. */
 export class BitDecoder implements BitCoder {
   readonly #bytes: Uint8Array;
+  readonly #part: string;
   #position = 0;
   #value = 0;
   #range = TOP;
 
-  constructor(bytes: Uint8Array) {
+  /** `part` names the bytes in refusals. */
+  constructor(bytes: Uint8Array, part: 'payload' | 'corrections') {
     this.#bytes = bytes;
+    this.#part = part;
     for (let i = 0; i < 4; i++) this.#value = this.#value * 256 + this.#next();
   }
 
@@ -104,13 +107,13 @@ export class BitDecoder implements BitCoder {
   finish(): void {
     const shifts = this.#position - 4;
     if (this.#bytes.length < shifts || this.#bytes.length > shifts + 4)
-      throw segmentError(`segment payload: expected ${shifts}..${shifts + 4} bytes, got ${this.#bytes.length}`);
+      throw segmentError(`segment ${this.#part}: expected ${shifts}..${shifts + 4} bytes, got ${this.#bytes.length}`);
   }
 
   #next(): number {
     if (this.#position < this.#bytes.length) return this.#bytes[this.#position++]!;
     if (this.#position >= this.#bytes.length + 4)
-      throw segmentError(`segment payload ends at byte ${this.#bytes.length}, before the last reading`);
+      throw segmentError(`segment ${this.#part}: expected more bytes, got an end after ${this.#bytes.length}`);
     this.#position++;
     return 0;
   }

@@ -3,8 +3,9 @@
  * kept), so each is told relative to the one before: ticks on, same channel or which, and the step from that channel's
  * last corrected index; range coded with adaptive bits, a run costs 1-2 bytes a reading.
  */
+import { MAX_CHANNELS } from '../limits.ts';
 import { type BitCoder, BitDecoder, BitEncoder, ONE } from './coder.ts';
-import { MAX_INDEX, MAX_SEGMENT_CHANNELS, segmentError } from './limits.ts';
+import { MAX_INDEX, segmentError } from './limits.ts';
 
 /** One late reading; the last word on its tick and channel. */
 export interface Correction {
@@ -33,7 +34,7 @@ export function encodeCorrections(corrections: readonly Correction[], firstTick:
  * throws  ProtocolError 'segment' when one names a channel, tick or index that cannot be
  */
 export function decodeCorrections(bytes: Uint8Array, count: number, firstTick: number, channels: number): Correction[] {
-  const decoder = new BitDecoder(bytes);
+  const decoder = new BitDecoder(bytes, 'corrections');
   const model = new CorrectionModel(decoder, firstTick);
   const nothing: Correction = { tick: firstTick, channel: 0, index: 0 };
   const corrections: Correction[] = [];
@@ -57,7 +58,7 @@ class CorrectionModel {
   readonly #tickBits = freshBits();
   readonly #indexBits = freshBits();
   readonly #sameChannel = new Uint16Array(1).fill(ONE / 2);
-  readonly #lastIndex = new Float64Array(MAX_SEGMENT_CHANNELS);
+  readonly #lastIndex = new Float64Array(MAX_CHANNELS);
   #tick: number;
   #channel = 0;
 

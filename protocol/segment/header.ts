@@ -16,8 +16,8 @@
  * | then | 1-3 | ticks |
  * | then | 1-2 | channels: signals, then inputs |
  * | then | 1-2 | signals among them |
- * | then | 2-130 | site: length in bytes, then UTF-8 |
- * | then | 2-130 | gateway: length in bytes, then UTF-8 |
+ * | then | 2-65 | site: length in bytes, then UTF-8 |
+ * | then | 2-65 | gateway: length in bytes, then UTF-8 |
  * | then | 4 | check of the start state |
  * | then | 4 | check of the end state |
  * | then | 0 or 2.. | keyed start only: length, then the start state in raw DEFLATE (RFC 1951) |
@@ -31,13 +31,13 @@
  */
 import { createHash } from 'node:crypto';
 import { crc32, deflateRawSync, inflateRawSync } from 'node:zlib';
+import { MAX_CHANNELS, MAX_NAME_BYTES } from '../limits.ts';
+import { isName, NAME_RULE } from '../name.ts';
 import { ARITHMETIC, SEGMENT_FORMAT } from '../version.ts';
 import { ByteCursor, type ByteSink } from './bytes.ts';
 import {
   MAX_CORRECTIONS,
-  MAX_NAME_BYTES,
   MAX_SEGMENT_BYTES,
-  MAX_SEGMENT_CHANNELS,
   MAX_SEGMENT_TICKS,
   MAX_SEGMENT_VALUES,
   MAX_STATE_BYTES,
@@ -115,7 +115,7 @@ export function readSegmentParts(bytes: Uint8Array): SegmentParts {
   const number = cursor.varint('number', 0, 0xffffffff);
   const firstTick = cursor.varint('first tick', 0, MAX_FIRST_TICK);
   const ticks = cursor.varint('ticks', 0, MAX_SEGMENT_TICKS);
-  const channelCount = cursor.varint('channels', 1, MAX_SEGMENT_CHANNELS);
+  const channelCount = cursor.varint('channels', 1, MAX_CHANNELS);
   const signalCount = cursor.varint('signals', 0, channelCount);
   if (ticks * channelCount > MAX_SEGMENT_VALUES)
     throw segmentError(`segment size: expected at most ${MAX_SEGMENT_VALUES} values, got ${ticks} × ${channelCount}`);
@@ -212,17 +212,17 @@ export function sealSegment(sink: ByteSink): Uint8Array {
 export function checkHeadFields(fields: SegmentHeadFields): void {
   checkWhole('number', fields.number, 0, 0xffffffff);
   checkWhole('first tick', fields.firstTick, 0, MAX_FIRST_TICK);
-  checkWhole('channels', fields.channelCount, 1, MAX_SEGMENT_CHANNELS);
+  checkWhole('channels', fields.channelCount, 1, MAX_CHANNELS);
   checkWhole('signals', fields.signalCount, 0, fields.channelCount);
   checkWhole('stream id bytes', fields.stream.length, 8, 8);
   checkWhole('bundle digest bytes', fields.bundle.length, 32, 32);
   checkWhole('start state bytes', fields.startState.length, 0, MAX_STATE_BYTES);
-  for (const field of ['site', 'gateway'] as const) {
-    const name = new TextEncoder().encode(fields[field]);
-    checkWhole(`${field} bytes`, name.length, 1, MAX_NAME_BYTES);
-    if (new TextDecoder().decode(name) !== fields[field])
-      throw segmentError(`segment ${field}: not valid Unicode text`);
-  }
+  for (const field of ['site', 'gateway'] as const) checkName(field, fields[field]);
+}
+
+function checkName(field: string, name: string): string {
+  if (isName(name)) return name;
+  throw segmentError(`segment ${field}: expected ${NAME_RULE}, got ${JSON.stringify(name)}`, { field });
 }
 
 function checkWhole(field: string, value: number, least: number, most: number): void {
@@ -255,11 +255,13 @@ function writeName(sink: ByteSink, name: string): void {
 
 function readName(cursor: ByteCursor, field: string): string {
   const bytes = cursor.take(cursor.varint(`${field} length`, 1, MAX_NAME_BYTES), field);
+  let name: string;
   try {
-    return new TextDecoder('utf-8', { fatal: true, ignoreBOM: true }).decode(bytes);
+    name = new TextDecoder('utf-8', { fatal: true, ignoreBOM: true }).decode(bytes);
   } catch (cause) {
     throw segmentError(`segment ${field}: expected UTF-8 text`, { field }, cause);
   }
+  return checkName(field, name);
 }
 
 function readState(cursor: ByteCursor, startCheck: number): Uint8Array {

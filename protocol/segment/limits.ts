@@ -7,16 +7,12 @@ import { ProtocolError } from '../errors.ts';
 export const MAX_SEGMENT_BYTES = 192 * 1024;
 /** Ticks of one segment: 18 hours of seconds; longer runs close and open the next. */
 export const MAX_SEGMENT_TICKS = 65_536;
-/** Channels, as many as a site file may hold. */
-export const MAX_SEGMENT_CHANNELS = 256;
 /** Ticks × channels: at about 2 µs a value, one segment never keeps a reader busy for more than a few seconds. */
 export const MAX_SEGMENT_VALUES = 1 << 21;
 /** Late readings carried by one segment. */
 export const MAX_CORRECTIONS = 65_536;
 /** Inflated bytes of a keyed start: 256 channels × 60 features × 8 bytes, doubled. */
 export const MAX_STATE_BYTES = 256 * 1024;
-/** UTF-8 bytes of a site or gateway name. */
-export const MAX_NAME_BYTES = 128;
 /** Largest magnitude of a lattice index: 40 bits, a 24-bit converter summed for eighteen hours of seconds. */
 export const MAX_INDEX = 2 ** 40;
 

@@ -26,7 +26,7 @@ export class SegmentReader {
       decodeCorrections(corrections, correctionCount, head.firstTick, head.channelCount),
     );
     this.#model = new TickModel(head.channelCount, residualScaleSteps);
-    this.#decoder = new BitDecoder(payload);
+    this.#decoder = new BitDecoder(payload, 'payload');
     if (head.ticks === 0) this.#decoder.finish();
   }
 
