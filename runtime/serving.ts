@@ -31,7 +31,8 @@ export interface CheckedBundle {
 }
 
 export class Serving {
-  readonly checked: CheckedBundle;
+  /** Replaced when the same document comes under a higher sequence. */
+  checked: CheckedBundle;
   readonly model: LinearModel;
   state: FilterState;
   bounds: Bounds;

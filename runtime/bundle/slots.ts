@@ -59,6 +59,13 @@ export class Slots {
     return slot;
   }
 
+  /** Replaces the serving slot's bundle by the same document sealed anew, durably. */
+  renew(sealed: Uint8Array): Slot {
+    const slot = this.#serving ?? 'a';
+    replaceOn(this.#disk, this.#path(`${slot}.swb`), sealed);
+    return slot;
+  }
+
   /** Raises the high-water mark, durably. */
   raise(epoch: number, sequence: number): void {
     const next = raised(this.#highWater, epoch, sequence);

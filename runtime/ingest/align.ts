@@ -52,6 +52,8 @@ export interface OpenReadings {
   readonly values: readonly number[];
   /** (nc) last counter readings, NaN where unknown. */
   readonly counters: readonly number[];
+  /** (nc) times of the newest readings, NaN where there was none. */
+  readonly latest: readonly number[];
 }
 
 const DEFAULT_REMEMBER_TICKS = 720;
@@ -166,12 +168,14 @@ export class Aligner {
         }
       });
     }
-    return { newestMs: this.#newestMs, channels, times, values, counters: [...this.#counters] };
+    const latest = [...this.lastReadingMs];
+    return { newestMs: this.#newestMs, channels, times, values, counters: [...this.#counters], latest };
   }
 
   /** Takes back what `openReadings` gave. */
   restore(open: OpenReadings): void {
     this.#counters.set(open.counters.slice(0, this.#counters.length));
+    this.lastReadingMs.set(open.latest.slice(0, this.#counters.length));
     for (let i = 0; i < open.times.length; i++) {
       const tick = Math.floor(open.times[i]! / this.#options.tickMs);
       if (this.#append(tick, open.channels[i]!, open.times[i]!, open.values[i]!) === 'taken')

@@ -79,6 +79,10 @@ class LastingConnection implements Connection {
     return Math.min(OWN_WINDOW, this.#client?.serverProperties?.receiveMaximum ?? OWN_WINDOW);
   }
 
+  get backlogBytes(): number {
+    return this.#client?.stream.writableLength ?? 0;
+  }
+
   publish(message: Outgoing): Promise<void> {
     const client = this.#client;
     if (!this.#isConnected || client === null)

@@ -65,6 +65,8 @@ export interface Connection {
   readonly protocol: 4 | 5 | null;
   /** Most QoS 1 messages that should be under way at once: the broker's receive maximum, at most 16. */
   readonly window: number;
+  /** Bytes handed over and not yet taken by the system. */
+  readonly backlogBytes: number;
   /**
    * Resolves when the broker process has it (QoS 1) or the bytes are handed to the system (QoS 0).
    *

@@ -7,7 +7,7 @@
  * whole boundary is tried again. A file that failed to sync is never trusted again.
  */
 import { join } from 'node:path';
-import { SegmentWriter } from '@stillwell/protocol';
+import { MAX_INDEX, SegmentWriter } from '@stillwell/protocol';
 import { type Disk, replaceOn, sweepParts } from '../disk.ts';
 import type { LateChange, OpenReadings } from '../ingest/align.ts';
 import type { Serving } from '../serving.ts';
@@ -156,7 +156,7 @@ export class Journal {
 
   /** Codes a late change. */
   changed(change: LateChange, latticeIndex: number, serving: Serving): void {
-    if (serving.tick < 0 || !Number.isInteger(latticeIndex)) return;
+    if (serving.tick < 0 || !(Math.abs(latticeIndex) <= MAX_INDEX)) return;
     this.#writer ??= this.#openWriter(serving, serving.tick + 1);
     this.#writer.correct(change.tick, change.channel, latticeIndex);
     this.#corrections++;

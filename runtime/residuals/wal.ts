@@ -95,18 +95,27 @@ function readBody(body: Uint8Array, channelCount: number): WalRecord | null {
 function readOpen(bytes: Uint8Array): WalRecord | null {
   try {
     const limits = { maxBytes: MAX_BODY_BYTES, maxItems: 1_000_000 };
-    const { newestMs, channels, times, values, counters } = decode(bytes, limits) as {
+    const { newestMs, channels, times, values, counters, latest } = decode(bytes, limits) as {
       newestMs: number | null;
       channels: number[];
       times: number[];
       values: number[];
       counters: (number | null)[];
+      latest: (number | null)[];
     };
     const open = { newestMs: newestMs ?? Number.NEGATIVE_INFINITY, channels, times, values };
-    return { kind: 'open', open: { ...open, counters: counters.map((value) => value ?? Number.NaN) } };
+    return { kind: 'open', open: { ...open, counters: withGaps(counters), latest: withGaps(latest) } };
   } catch {
     return null;
   }
+}
+
+function withGaps(values: readonly (number | null)[]): number[] {
+  return values.map((value) => value ?? Number.NaN);
+}
+
+function withNulls(values: readonly number[]): (number | null)[] {
+  return values.map((value) => (Number.isNaN(value) ? null : value));
 }
 
 /** An open journal file. Appending is not yet durable; `sync` makes it so. */
@@ -152,7 +161,8 @@ export class Wal {
       channels: open.channels,
       times: open.times,
       values: open.values,
-      counters: open.counters.map((value) => (Number.isNaN(value) ? null : value)),
+      counters: withNulls(open.counters),
+      latest: withNulls(open.latest),
     });
     const frame = Buffer.alloc(FRAME_BYTES + 1 + body.length);
     frame[FRAME_BYTES] = OPEN;

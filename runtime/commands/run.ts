@@ -1,0 +1,75 @@
+/** `stillwell-gateway run`: the gateway itself, until it is told to stop. */
+import { Command } from 'commander';
+import { systemClock } from '../clock.ts';
+import { makeDataFolder, type RawOptions, readConfig, readGiven } from '../config.ts';
+import { nodeDisk } from '../disk.ts';
+import { RuntimeError } from '../errors.ts';
+import { Gateway } from '../gateway.ts';
+import { takeLock } from '../lock.ts';
+import { createLog } from '../log.ts';
+import { brokerOptions, siteOptions } from './options.ts';
+
+interface RunOptions extends RawOptions {
+  readonly bundle?: string;
+  readonly log: string;
+}
+
+/** Builds the command. */
+export function runCommand(): Command {
+  const command = new Command('run').description(
+    'Subscribes to the site, filters, forecasts and keeps the record; takes bundles from the broker or from a file.',
+  );
+  return brokerOptions(siteOptions(command))
+    .requiredOption('--data <folder>', 'data folder of this gateway, made if absent')
+    .option('--bundle <file>', 'sealed bundle to put to work first, if it is newer than what serves')
+    .option('--gateway <name>', 'name of this gateway (default: the host name)')
+    .option('--clock <kind>', 'wall: ticks close by the clock; readings: by the readings alone, for replays', 'wall')
+    .option('--segment-ticks <n>', 'ticks in a segment (default: an hour of them, 60 to 3600)')
+    .option('--spool-mib <n>', 'most MiB of segments waiting on disk (default 32)')
+    .option('--health-seconds <n>', 'seconds between health messages (default 60)')
+    .option('--log <level>', 'debug, info, warn, error or silent', 'info')
+    .addHelpText(
+      'after',
+      '\nExample:\n  stillwell-gateway run --site site.yaml --data /var/lib/stillwell --trust author.pub \\\n' +
+        '    --broker mqtt://localhost:1883 --bundle first.swb',
+    )
+    .action(run);
+}
+
+async function run(options: RunOptions): Promise<void> {
+  const log = createLog(options.log);
+  const config = readConfig(nodeDisk, options);
+  const first = options.bundle === undefined ? null : readGiven(nodeDisk, options.bundle, 'bundle');
+  makeDataFolder(nodeDisk, config.data);
+  const unlock = takeLock(config.data);
+  let gateway: Gateway | null = null;
+  try {
+    gateway = new Gateway(config, { clock: systemClock, disk: nodeDisk, log });
+    log.info(
+      `gateway ${config.gateway} of site ${config.site.site}: ${config.site.signals.length} signals, broker ${config.broker.url}`,
+    );
+    if (first !== null) offerFirst(gateway, first, options.bundle!);
+    if (gateway.engine.serving === null) log.info('no bundle yet: waiting for one from the broker or from `load`');
+    await untilToldToStop();
+    log.info('stopping');
+    await gateway.stop();
+    log.info('stopped');
+  } catch (error) {
+    await gateway?.abandon();
+    throw error;
+  } finally {
+    unlock();
+  }
+}
+
+/** A bundle named on the command line must be good where nothing else serves; an old one beside a serving one is only said. */
+function offerFirst(gateway: Gateway, sealed: Uint8Array, path: string): void {
+  const outcome = gateway.offerBundle(sealed, path);
+  if (gateway.engine.serving === null) throw new RuntimeError('bundle', outcome);
+}
+
+function untilToldToStop(): Promise<void> {
+  return new Promise((resolve) => {
+    for (const signal of ['SIGINT', 'SIGTERM'] as const) process.once(signal, () => resolve());
+  });
+}

@@ -1,0 +1,195 @@
+/**
+ * What a gateway is started with: options checked once, files read once, each refusal one sentence with file and field.
+ */
+import { hostname } from 'node:os';
+import { join } from 'node:path';
+import {
+  isName,
+  NAME_RULE,
+  ProtocolError,
+  parseKey,
+  parseSite,
+  type Site,
+  type TrustedKeys,
+  toName,
+} from '@stillwell/protocol';
+import type { Disk } from './disk.ts';
+import { RuntimeError } from './errors.ts';
+import { parseBrokerUrl, type TlsOptions } from './mqtt/stream.ts';
+
+/** When ticks close: by the wall clock, or by the times of the readings alone (replays, accelerated plants). */
+export type ClockKind = 'wall' | 'readings';
+
+export interface BrokerConfig {
+  readonly url: string;
+  readonly protocol: 'auto' | 4 | 5;
+  readonly username: string | null;
+  readonly password: string | null;
+  readonly tls: TlsOptions;
+}
+
+export interface GatewayConfig {
+  readonly site: Site;
+  readonly gateway: string;
+  /** Absolute or relative path of the data folder. */
+  readonly data: string;
+  readonly broker: BrokerConfig;
+  readonly trusted: TrustedKeys;
+  readonly clock: ClockKind;
+  readonly segmentTicks: number;
+  readonly spoolBytes: number;
+  readonly healthSeconds: number;
+}
+
+/** Options as the command line gives them; numbers still text. */
+export interface RawOptions {
+  readonly site: string;
+  readonly data: string;
+  readonly broker: string;
+  readonly trust: readonly string[];
+  readonly gateway?: string;
+  readonly clock?: string;
+  readonly protocol?: string;
+  readonly segmentTicks?: string;
+  readonly spoolMib?: string;
+  readonly healthSeconds?: string;
+  readonly username?: string;
+  readonly passwordFile?: string;
+  readonly authority?: string;
+  readonly certificate?: string;
+  readonly key?: string;
+}
+
+const DEFAULT_SPOOL_MIB = 32;
+const DEFAULT_HEALTH_SECONDS = 60;
+const HOUR_MS = 3_600_000;
+
+/** throws  RuntimeError or ProtocolError, each with one sentence that says what to mend */
+export function readConfig(disk: Disk, raw: RawOptions): GatewayConfig {
+  const site = readSite(disk, raw.site);
+  const gateway = raw.gateway ?? toName(hostname());
+  if (!isName(gateway)) throw new RuntimeError('options', `--gateway "${gateway}": expected ${NAME_RULE}`);
+  parseBrokerUrl(raw.broker);
+  return {
+    site,
+    gateway,
+    data: raw.data,
+    broker: readBroker(disk, raw),
+    trusted: readTrust(disk, raw.trust),
+    clock: oneOf('--clock', raw.clock ?? 'wall', ['wall', 'readings']),
+    segmentTicks: whole('--segment-ticks', raw.segmentTicks, defaultSegmentTicks(site.tickMs), 1, 65_536),
+    spoolBytes: whole('--spool-mib', raw.spoolMib, DEFAULT_SPOOL_MIB, 1, 65_536) * 1024 * 1024,
+    healthSeconds: whole('--health-seconds', raw.healthSeconds, DEFAULT_HEALTH_SECONDS, 1, 86_400),
+  };
+}
+
+/** An hour's worth, but at least 60 so that head and coder start-up are spread, and at most 3600. */
+export function defaultSegmentTicks(tickMs: number): number {
+  return Math.min(3600, Math.max(60, Math.round(HOUR_MS / tickMs)));
+}
+
+/** Reads and checks a site file; throws  RuntimeError 'file', ProtocolError 'site-file' */
+export function readSite(disk: Disk, path: string): Site {
+  const site = parseSite(readText(disk, path, 'site file'), path);
+  const silent = site.signals.filter((signal) => signal.topic === null);
+  if (silent.length === site.signals.length)
+    throw new RuntimeError(
+      'file',
+      `${path}: no signal has a topic, so a gateway would hear nothing; add "topic:" to the signals to run this site`,
+    );
+  return site;
+}
+
+/** Reads public author keys; throws  RuntimeError 'keys' or 'file', ProtocolError 'key' */
+export function readTrust(disk: Disk, paths: readonly string[]): TrustedKeys {
+  if (paths.length === 0)
+    throw new RuntimeError('keys', '--trust: expected at least one public author key file, got none');
+  return paths.map((path) => {
+    const key = parseKey(readText(disk, path, 'key file'), path);
+    if (key.kind !== 'author')
+      throw new RuntimeError(
+        'keys',
+        `${path}: expected an author key, got a ${key.kind} key; bundles are sealed by authors`,
+      );
+    return { kind: key.kind, publicKey: key.publicKey };
+  });
+}
+
+/** Reads a file that the person named; throws  RuntimeError 'file' */
+export function readGiven(disk: Disk, path: string, what: string): Uint8Array {
+  let bytes: Uint8Array | null;
+  try {
+    bytes = disk.read(path);
+  } catch (cause) {
+    const code = (cause as { code?: string }).code ?? 'unreadable';
+    throw new RuntimeError('file', `${what} ${path}: cannot be read (${code})`, { cause });
+  }
+  if (bytes === null) throw new RuntimeError('file', `${what} ${path}: no such file`);
+  if (bytes.length === 0) throw new RuntimeError('file', `${what} ${path}: the file is empty`);
+  return bytes;
+}
+
+/** Makes the data folder; throws  RuntimeError 'data-folder' */
+export function makeDataFolder(disk: Disk, folder: string): void {
+  try {
+    disk.makeFolder(folder);
+    const probe = join(folder, '.probe.part');
+    disk.write(probe, new Uint8Array(1));
+    disk.remove(probe);
+  } catch (cause) {
+    const code = (cause as { code?: string }).code ?? 'error';
+    throw new RuntimeError(
+      'data-folder',
+      `data folder ${folder}: cannot be written (${code}); give another with --data`,
+      {
+        cause,
+      },
+    );
+  }
+}
+
+function readText(disk: Disk, path: string, what: string): string {
+  const bytes = readGiven(disk, path, what);
+  try {
+    return new TextDecoder('utf-8', { fatal: true }).decode(bytes);
+  } catch (cause) {
+    throw new RuntimeError('file', `${what} ${path}: expected text in UTF-8, got other bytes`, { cause });
+  }
+}
+
+function readBroker(disk: Disk, raw: RawOptions): BrokerConfig {
+  const pem = (path: string | undefined, what: string): Uint8Array | null =>
+    path === undefined ? null : readGiven(disk, path, what);
+  const protocol = oneOf('--protocol', raw.protocol ?? 'auto', ['auto', '3.1.1', '5']);
+  const password = raw.passwordFile === undefined ? null : readText(disk, raw.passwordFile, 'password file');
+  return {
+    url: raw.broker,
+    protocol: protocol === 'auto' ? 'auto' : protocol === '5' ? 5 : 4,
+    username: raw.username ?? null,
+    password: password === null ? null : password.replace(/\r?\n$/, ''),
+    tls: {
+      authority: pem(raw.authority, 'certificate authority'),
+      certificate: pem(raw.certificate, 'client certificate'),
+      key: pem(raw.key, 'client key'),
+    },
+  };
+}
+
+function oneOf<T extends string>(option: string, value: string, known: readonly T[]): T {
+  const found = known.find((one) => one === value);
+  if (found === undefined)
+    throw new RuntimeError('options', `${option}: expected ${known.join(' or ')}, got "${value}"`);
+  return found;
+}
+
+function whole(option: string, text: string | undefined, byDefault: number, least: number, most: number): number {
+  if (text === undefined) return byDefault;
+  const value = /^\d+$/.test(text) ? Number(text) : Number.NaN;
+  if (value >= least && value <= most) return value;
+  throw new RuntimeError('options', `${option}: expected a whole number from ${least} to ${most}, got "${text}"`);
+}
+
+/** Whether an error is one that the person can mend; the command line then exits with 2. */
+export function isRefusal(error: unknown): error is RuntimeError | ProtocolError {
+  return error instanceof RuntimeError || error instanceof ProtocolError;
+}

@@ -1,0 +1,254 @@
+/**
+ * The gateway's inside, without a broker: readings are laid on ticks, ticks go through the journal and the serving
+ * bundle's filter, surprises into segments. The same readings give the same ticks, forecasts and segments, whether it ran
+ * through or was stopped and started in between.
+ */
+import { latticeIndex, type Site } from '@stillwell/protocol';
+import type { BundleKeeper } from './bundle/change.ts';
+import type { Disk } from './disk.ts';
+import { Counters } from './health.ts';
+import { Aligner, type LateChange, type OpenReadings } from './ingest/align.ts';
+import { type DecodedReading, ReadingDecoder } from './ingest/decode.ts';
+import { refusedBecause } from './ingest/quality.ts';
+import { RecentTicks } from './ingest/recent.ts';
+import { Journal, type JournalPosition } from './residuals/journal.ts';
+import { type Identity, openIdentity, type Recovered, recover, renewIdentity } from './residuals/recover.ts';
+import { Spool } from './residuals/spool.ts';
+import { type CheckedBundle, Serving } from './serving.ts';
+
+export interface EngineOptions {
+  readonly site: Site;
+  readonly gateway: string;
+  readonly disk: Disk;
+  readonly folder: string;
+  readonly segmentTicks: number;
+  readonly spoolBytes: number;
+  /** 8 bytes; random unless given. */
+  readonly stream?: Uint8Array;
+  readonly note: (level: 'info' | 'warn', text: string) => void;
+}
+
+/** Ticks kept to warm a new bundle with. */
+const RECENT_TICKS = 8192;
+/** An outage of more ticks than this is not bridged: the filter starts afresh behind it. */
+const MAX_GAP_TICKS = 50_000;
+
+export class Engine {
+  readonly counters = new Counters();
+  readonly decoder: ReadingDecoder;
+  readonly aligner: Aligner;
+  readonly spool: Spool;
+  readonly identity: Identity;
+  readonly #options: EngineOptions;
+  readonly #recent: RecentTicks;
+  readonly #ranges: readonly (readonly [number, number] | null)[];
+  #serving: Serving | null = null;
+  #journal: Journal | null = null;
+  #position: JournalPosition = { number: 0, sinceKeyed: 0 };
+
+  /** Opens the data folder and goes on where it stopped. throws  RuntimeError 'data-folder' */
+  constructor(options: EngineOptions, keeper: BundleKeeper) {
+    const { site, disk, folder, gateway } = options;
+    const channels = [...site.signals, ...site.inputs];
+    this.#options = options;
+    this.decoder = new ReadingDecoder(site);
+    this.#ranges = channels.map((channel) => channel.range);
+    const aggregates = channels.map((channel) => channel.aggregate);
+    this.aligner = new Aligner({ tickMs: site.tickMs, latenessMs: site.latenessMs, aggregates });
+    this.#recent = new RecentTicks(channels.length, RECENT_TICKS);
+    let identity = openIdentity(disk, folder, site.site, gateway, options.stream);
+    let recovered = recover(disk, folder, identity.stream);
+    if (recovered === 'damaged') {
+      options.note('warn', 'the checkpoint is damaged: a new stream of segments starts, the filter starts afresh');
+      identity = renewIdentity(disk, folder, identity);
+      recovered = null;
+    }
+    this.identity = identity;
+    this.spool = new Spool(disk, `${folder}/spool`, options.spoolBytes, this.streamName);
+    if (recovered !== null) this.spool.discardFrom(this.streamName, recovered.checkpoint.number);
+    this.#start(keeper, recovered);
+  }
+
+  get streamName(): string {
+    return Buffer.from(this.identity.stream).toString('hex');
+  }
+
+  get serving(): Serving | null {
+    return this.#serving;
+  }
+
+  get journal(): Journal | null {
+    return this.#journal;
+  }
+
+  /** Takes one MQTT message in; `arrivalMs` stands for the time of readings without one. */
+  message(topic: string, payload: Uint8Array, arrivalMs: number, notAfterMs: number | null): void {
+    this.decoder.decode(
+      topic,
+      payload,
+      (reading) => this.#reading(reading, arrivalMs, notAfterMs),
+      (_, cause) => this.counters.refuse(cause),
+    );
+  }
+
+  /**
+   * Closes the ticks that are due, each folded into the filter, and returns how many.
+   *
+   * nowMs  the wall clock, or null: event time alone
+   */
+  close(nowMs: number | null): number {
+    const due = this.aligner.due(nowMs);
+    if (due > MAX_GAP_TICKS) this.#jump(due);
+    return this.aligner.close(nowMs, ({ tick, values }) => this.#fold(tick, values, true));
+  }
+
+  /** Closes the open segment if it is due, or tries again what the disk refused. Call when forecasts are out. */
+  settle(retry = false): void {
+    const journal = this.#journal;
+    if (journal === null || this.#serving === null) return;
+    if (journal.isDue || (retry && journal.fault !== null)) journal.turnOver(this.#serving, this.#serving);
+  }
+
+  /** Puts a bundle to work: warmed on the recent ticks, changed at the present tick boundary. */
+  install(checked: CheckedBundle): void {
+    const after = this.#warmed(checked);
+    if (this.#journal !== null && this.#serving !== null) this.#journal.turnOver(this.#serving, after);
+    else {
+      this.#journal = this.#openJournal();
+      this.#journal.begin(after);
+    }
+    this.#serving = after;
+  }
+
+  /** The same document under a higher sequence. */
+  restamp(checked: CheckedBundle): void {
+    if (this.#serving !== null) this.#serving.checked = checked;
+  }
+
+  /** Leaves everything on disk, the readings of open ticks too. */
+  stop(): void {
+    this.settle();
+    this.#journal?.stop(this.aligner.openReadings());
+  }
+
+  #start(keeper: BundleKeeper, recovered: Recovered | null): void {
+    const known = recovered === null ? null : keeper.byDigest(recovered.checkpoint.bundle);
+    if (recovered !== null) this.#position = recovered.checkpoint;
+    if (recovered !== null && known !== null && this.#resume(known, recovered)) keeper.serves(known);
+    else {
+      if (recovered !== null)
+        this.#options.note('warn', 'the bundle of the checkpoint is gone: the filter starts afresh');
+      const first = keeper.best();
+      if (first === null) return;
+      this.install(first);
+      keeper.serves(first);
+    }
+    const newer = keeper.interrupted(this.#serving!.checked);
+    if (newer === null) return;
+    this.install(newer);
+    keeper.serves(newer);
+  }
+
+  #resume(checked: CheckedBundle, recovered: Recovered): boolean {
+    const { checkpoint, records, validBytes, tornBytes, kept, earlier } = recovered;
+    const serving = new Serving(checked);
+    try {
+      serving.restore(checkpoint.state, checkpoint.bounds);
+    } catch {
+      return false;
+    }
+    if (tornBytes > 0) this.#options.note('warn', `journal: ${tornBytes} torn bytes cut off`);
+    this.#serving = serving;
+    this.#journal = this.#openJournal();
+    this.#journal.resume(checkpoint.state, validBytes, kept);
+    for (const record of earlier) if (record.kind === 'tick') this.#recent.push(record.tick, record.values);
+    if (serving.tick >= 0) this.aligner.startAt(serving.tick + 1);
+    let open: OpenReadings | null = null;
+    for (const record of records) {
+      open = record.kind === 'open' ? record.open : null;
+      // Where a shorter segment length closed the segment on the way, the rest belongs into the next journal file.
+      const isNew = this.#journal.number !== checkpoint.number;
+      if (record.kind === 'tick') this.#fold(record.tick, record.values, isNew);
+      if (record.kind === 'change') this.#correct(record, isNew);
+    }
+    if (this.#serving.tick >= 0) this.aligner.startAt(this.#serving.tick + 1);
+    if (open !== null) this.aligner.restore(open);
+    this.counters.ticks = 0;
+    return true;
+  }
+
+  #openJournal(): Journal {
+    const { disk, folder, gateway, site, segmentTicks } = this.#options;
+    const { spool } = this;
+    const channelCount = this.#ranges.length;
+    const { stream } = this.identity;
+    const keepTicks = RECENT_TICKS;
+    return new Journal(
+      { disk, folder, site: site.site, gateway, stream, spool, segmentTicks, keepTicks, channelCount },
+      this.#position,
+    );
+  }
+
+  #warmed(checked: CheckedBundle): Serving {
+    const serving = new Serving(checked);
+    this.#recent.forEach((tick, values) => {
+      serving.step(tick, values);
+    });
+    const next = this.aligner.nextTick;
+    return serving.tick < 0 || serving.tick + 1 === next ? serving : new Serving(checked);
+  }
+
+  #reading({ channel, value, timeMs }: DecodedReading, arrivalMs: number, notAfterMs: number | null): void {
+    const cause = refusedBecause(value, this.#ranges[channel]!);
+    if (cause !== null) {
+      this.counters.refuse(cause);
+      return;
+    }
+    const placed = this.aligner.place(channel, timeMs ?? arrivalMs, value, notAfterMs, (change) =>
+      this.#correct(change, true),
+    );
+    if (placed === 'duplicate') this.counters.duplicates++;
+    else if (placed === 'future' || placed === 'too-late' || placed === 'flood') this.counters.refuse(placed);
+    else {
+      this.counters.readings++;
+      if (placed !== 'taken') this.counters.late++;
+    }
+  }
+
+  /** toDisk  false for what the open journal file holds already */
+  #fold(tick: number, values: Float64Array, toDisk: boolean): void {
+    const serving = this.#serving;
+    const journal = this.#journal;
+    this.#recent.push(tick, values);
+    this.counters.ticks++;
+    if (serving === null || journal === null) return;
+    if (journal.isDue) journal.turnOver(serving, serving);
+    if (toDisk) journal.tick(tick, values);
+    serving.step(tick, values);
+    journal.coded(serving);
+  }
+
+  #correct(change: LateChange, toDisk: boolean): void {
+    const serving = this.#serving;
+    const journal = this.#journal;
+    this.counters.corrections++;
+    if (serving === null || journal === null) return;
+    const { latticeStep, latticeOffset } = serving.model;
+    const index = latticeIndex(change.value, latticeStep[change.channel]!, latticeOffset[change.channel]!);
+    if (toDisk) journal.change(change, index, serving);
+    else journal.changed(change, index, serving);
+  }
+
+  /** Past an outage too long to bridge tick by tick: go on just before now, with a filter that starts afresh. */
+  #jump(due: number): void {
+    const next = this.aligner.nextTick;
+    if (next === null) return;
+    this.aligner.startAt(next + due - 1);
+    this.counters.skippedTicks += due - 1;
+    this.#options.note('warn', `outage of ${due} ticks: too long to bridge, the filter starts afresh`);
+    if (this.#serving === null || this.#journal === null) return;
+    const after = new Serving(this.#serving.checked);
+    this.#journal.turnOver(this.#serving, after);
+    this.#serving = after;
+  }
+}

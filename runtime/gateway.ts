@@ -1,0 +1,335 @@
+/**
+ * The gateway: engine, broker, slots and spool wired together. One thread, one loop: messages come in, ticks close,
+ * forecasts go out, then the disk is tended. Nothing that comes from outside can throw out of here.
+ */
+import { join } from 'node:path';
+import { type BundleChange, type HealthStatus, parseReceiptMessage, toHex, topicsOf } from '@stillwell/protocol';
+import { BundleKeeper } from './bundle/change.ts';
+import type { GatewayConfig } from './config.ts';
+import { Engine } from './engine.ts';
+import { type Connection, type ConnectionEvent, openConnection } from './mqtt/connection.ts';
+import { dispatch, filtersOf } from './mqtt/subscriptions.ts';
+import type { GatewayPorts } from './ports.ts';
+import { Publisher } from './publish/publisher.ts';
+import { Shipper } from './residuals/ship.ts';
+
+/** A wall clock before 2020 was never set: only the readings' own times can then be believed. */
+const CLOCK_UNSET_MS = Date.UTC(2020, 0, 1);
+/** The loop comes round at least so often, for whatever is due. */
+const PULSE_MS = 500;
+const SYNC_MS = 1000;
+const RETRY_DISK_MS = 30_000;
+/** How long a start waits for the broker's kept messages before the wall clock may close ticks. */
+const SETTLE_MS = 1000;
+const SETTLE_AT_MOST_MS = 10_000;
+const CATCHING_UP_TICKS = 3;
+const SESSION_EXPIRY_SECONDS = 3600;
+
+/** A bundle file put here is taken in, checked, and removed. */
+export function incomingPath(folder: string): string {
+  return join(folder, 'incoming.swb');
+}
+
+export class Gateway {
+  readonly engine: Engine;
+  readonly #config: GatewayConfig;
+  readonly #ports: GatewayPorts;
+  readonly #keeper: BundleKeeper;
+  readonly #topics: ReturnType<typeof topicsOf>;
+  readonly #shipper: Shipper;
+  readonly #connection: Connection;
+  readonly #publisher: Publisher;
+  #status: HealthStatus = 'starting';
+  #lastChange: BundleChange | null = null;
+  #refusedBundle = '';
+  #cancelPulse: () => void = () => {};
+  #isPublishDue = false;
+  #holdUntil: number;
+  #syncedAt = 0;
+  #retriedAt = 0;
+  #saidFault: string | null = null;
+  #isStopping = false;
+
+  /** Opens the data folder and starts. throws  RuntimeError 'data-folder' */
+  constructor(config: GatewayConfig, ports: GatewayPorts) {
+    const { site, gateway, data, segmentTicks, spoolBytes } = config;
+    const { clock, disk, log } = ports;
+    this.#config = config;
+    this.#ports = ports;
+    this.#topics = topicsOf(site.root, site.site);
+    this.#keeper = new BundleKeeper(disk, data, site, config.trusted);
+    for (const fault of this.#keeper.faults) log.warn(`bundle on disk not usable: ${fault}`);
+    this.engine = new Engine(
+      {
+        site,
+        gateway,
+        disk,
+        folder: data,
+        segmentTicks,
+        spoolBytes,
+        ...(ports.stream ? { stream: ports.stream } : {}),
+        note: (level, text) => log[level](text),
+      },
+      this.#keeper,
+    );
+    this.#holdUntil = clock.monotonic() + SETTLE_AT_MOST_MS;
+    this.#connection = this.#connect();
+    this.#publisher = new Publisher(config, ports, this.#connection, this.#topics);
+    this.#shipper = new Shipper({
+      spool: this.engine.spool,
+      clock,
+      window: () => this.#connection.window,
+      send: (segment) =>
+        this.#connection.publish({ topic: this.#topics.segments, payload: segment, qos: 1, retain: false }),
+    });
+    this.#release();
+    this.#setStatus();
+    void this.#connection.subscribe(filtersOf(this.#topics, this.engine.decoder.filters)).catch(() => {});
+    this.#pulse();
+  }
+
+  get status(): HealthStatus {
+    return this.#status;
+  }
+
+  get isConnected(): boolean {
+    return this.#connection.isConnected;
+  }
+
+  /** Checks a sealed bundle and, if it holds, puts it to work at this tick boundary; the outcome as one sentence. */
+  offerBundle(sealed: Uint8Array, from: string): string {
+    const { log, clock } = this.#ports;
+    const before = this.engine.serving?.checked ?? null;
+    const offered = this.#keeper.offer(sealed, before);
+    if (offered.outcome === 'known') return 'this bundle is known already';
+    const was = before === null ? null : toHex(before.digest);
+    if (offered.outcome === 'refused') {
+      const text = `bundle ${from} refused (${offered.code}): ${offered.reason}`;
+      // A retained bundle comes again on every connect; one word about it is enough.
+      if (text === this.#refusedBundle) return text;
+      this.#refusedBundle = text;
+      log.warn(text);
+      const reason = `${offered.code}: ${offered.reason}`;
+      this.#lastChange = { atMs: clock.wall(), from: was, to: null, outcome: 'refused', reason };
+      this.#sayHealth();
+      return text;
+    }
+    const { checked, isSameDocument } = offered;
+    if (isSameDocument) this.engine.restamp(checked);
+    else this.engine.install(checked);
+    this.#guardDisk('pointer', () => this.#keeper.serves(checked));
+    this.#release();
+    const to = toHex(checked.digest);
+    const outcome = isSameDocument ? 'renewed' : 'changed';
+    this.#lastChange = { atMs: clock.wall(), from: was, to, outcome, reason: null };
+    this.#setStatus();
+    this.#sayHealth();
+    const text = `bundle ${from} ${outcome}: ${to.slice(0, 16)}…, sequence ${checked.sequence}`;
+    log.info(text);
+    return text;
+  }
+
+  /** Takes a bundle left in the data folder. */
+  takeIncoming(): void {
+    const { disk } = this.#ports;
+    const path = incomingPath(this.#config.data);
+    this.#guardDisk('incoming bundle', () => {
+      if (disk.size(path) === 0) return;
+      const sealed = disk.read(path);
+      if (sealed !== null) this.offerBundle(sealed, 'from the data folder');
+      disk.remove(path);
+    });
+  }
+
+  /** Flushes, syncs, says 'stopped' and leaves. Takes no more than two seconds. */
+  async stop(): Promise<void> {
+    if (this.#isStopping) return;
+    this.#isStopping = true;
+    this.#cancelPulse();
+    this.engine.stop();
+    this.#status = 'stopped';
+    await this.#publisher.health(this.#report());
+    await this.#connection.end();
+  }
+
+  /** Cuts the line without a word, as a crash would; for tests of what then happens. */
+  async abandon(): Promise<void> {
+    this.#isStopping = true;
+    this.#cancelPulse();
+    await this.#connection.end(true);
+  }
+
+  #connect(): Connection {
+    const { broker, site, gateway } = this.#config;
+    const { firstRetryMs, clock } = this.#ports;
+    return openConnection({
+      url: broker.url,
+      clientId: `stillwell-${site.site}-${gateway}`,
+      protocol: broker.protocol,
+      username: broker.username,
+      password: broker.password,
+      tls: broker.tls,
+      sessionExpirySeconds: SESSION_EXPIRY_SECONDS,
+      will: Publisher.will(site.site, gateway, this.#topics.health, clock.wall()),
+      ...(firstRetryMs === undefined ? {} : { backOff: { firstMs: firstRetryMs } }),
+      onMessage: (topic, payload) => this.#take(topic, payload),
+      onState: (event) => this.#onConnection(event),
+    });
+  }
+
+  #onConnection(event: ConnectionEvent): void {
+    const { log, clock } = this.#ports;
+    if (event.kind === 'connected') {
+      log.info(`connected to the broker, MQTT ${event.protocol === 5 ? '5' : '3.1.1'}`);
+      this.#holdUntil = Math.min(this.#holdUntil, clock.monotonic() + SETTLE_MS);
+      this.#shipper.connected();
+      this.#sayHealth();
+    } else if (event.kind === 'lost') {
+      this.#shipper.lost();
+      this.#publisher.reconnects++;
+      log.warn(`broker: ${event.reason}; next attempt in ${(event.retryMs / 1000).toFixed(1)} s`);
+    } else if (event.kind === 'refused-subscription') {
+      log.warn(`the broker refused to subscribe ${event.filter}: ${event.reason}`);
+    } else if (event.kind === 'taken-over') {
+      log.warn(`another client took this gateway's place at the broker (${event.count})`);
+    } else log.error(event.reason);
+  }
+
+  #take(topic: string, payload: Uint8Array): void {
+    if (this.#isStopping) return;
+    try {
+      dispatch(
+        this.#topics,
+        {
+          bundle: (sealed) => void this.offerBundle(sealed, 'from the broker'),
+          receipt: (bytes) => this.#receipt(bytes),
+          reading: (from, bytes) => this.#reading(from, bytes),
+        },
+        topic,
+        payload,
+      );
+    } catch (error) {
+      this.#ports.log.error(`message on ${topic} not handled: ${(error as Error).message}`);
+    }
+  }
+
+  #reading(topic: string, payload: Uint8Array): void {
+    const { site } = this.#config;
+    const wall = this.#ports.clock.wall();
+    const isSet = wall >= CLOCK_UNSET_MS;
+    const notAfterMs = this.#config.clock === 'wall' && isSet ? wall + site.latenessMs + site.tickMs : null;
+    this.engine.message(topic, payload, wall, notAfterMs);
+    if (this.#config.clock === 'readings' || !isSet) this.#closeTicks();
+  }
+
+  #receipt(payload: Uint8Array): void {
+    const { log } = this.#ports;
+    let receipt: ReturnType<typeof parseReceiptMessage>;
+    try {
+      receipt = parseReceiptMessage(payload);
+    } catch (error) {
+      log.warn(`receipt not readable: ${(error as Error).message}`);
+      return;
+    }
+    if (receipt.gateway !== this.#config.gateway) return;
+    const stream = toHex(receipt.stream);
+    for (const { number, hash } of receipt.segments)
+      if (this.#shipper.receipt(stream, number, hash) === 'conflict')
+        log.error(`segment ${number}: the desk holds other bytes under this number; it is kept aside here`);
+    this.#shipper.poke();
+  }
+
+  /** The loop: what is due now, then sleep until the next tick closes. */
+  #pulse(): void {
+    const { clock } = this.#ports;
+    this.#closeTicks();
+    const now = clock.monotonic();
+    if (now - this.#syncedAt >= SYNC_MS) {
+      this.#syncedAt = now;
+      if (this.engine.journal?.isDirty) void this.engine.journal.syncSoon();
+      this.takeIncoming();
+    }
+    const isRetry = now - this.#retriedAt >= RETRY_DISK_MS;
+    if (isRetry) this.#retriedAt = now;
+    this.#tend(isRetry);
+    this.#shipper.poke();
+    if (this.#publisher.isHealthDue()) this.#sayHealth();
+    this.#cancelPulse = clock.after(this.#untilNextMs(), () => this.#pulse());
+  }
+
+  #untilNextMs(): number {
+    const { site, clock } = this.#config;
+    const next = this.engine.aligner.nextTick;
+    if (clock === 'readings' || next === null) return PULSE_MS;
+    const dueMs = (next + 1) * site.tickMs + site.latenessMs - this.#ports.clock.wall();
+    return Math.min(PULSE_MS, Math.max(1, dueMs));
+  }
+
+  #closeTicks(): void {
+    const { clock } = this.#ports;
+    const wall = clock.wall();
+    const byWall = this.#config.clock === 'wall' && wall >= CLOCK_UNSET_MS;
+    // Messages kept by the broker while we were away come before the ticks they belong to are closed as missing.
+    if (byWall && clock.monotonic() < this.#holdUntil) return;
+    const closed = this.engine.close(byWall ? wall : null);
+    if (closed === 0) return;
+    this.#publisher.isCatchingUp = byWall && closed >= CATCHING_UP_TICKS;
+    if (byWall) this.#publishTick();
+    else if (!this.#isPublishDue) {
+      // Readings of many ticks often come in one go: forecasts of the last one are enough.
+      this.#isPublishDue = true;
+      setImmediate(() => this.#publishTick());
+    }
+  }
+
+  #publishTick(): void {
+    this.#isPublishDue = false;
+    if (this.#isStopping) return;
+    const { serving } = this.engine;
+    if (serving !== null && serving.tick >= 0) {
+      const issuedAtMs = this.#config.clock === 'wall' ? this.#ports.clock.wall() : this.engine.aligner.newestMs;
+      this.#publisher.tick(serving, this.engine.aligner.lastReadingMs, issuedAtMs);
+    }
+    this.#tend(false);
+    const before = this.#status;
+    this.#setStatus();
+    if (before !== this.#status) this.#sayHealth();
+  }
+
+  /** The disk's turn, once forecasts are out. */
+  #tend(isRetry: boolean): void {
+    this.engine.settle(isRetry);
+    this.#release();
+    const fault = this.engine.journal?.fault ?? null;
+    if (fault === this.#saidFault) return;
+    this.#saidFault = fault;
+    if (fault === null) this.#ports.log.info('the disk takes data again');
+    else this.#ports.log.error(`nothing is being kept on disk: ${fault}; forecasts go on`);
+  }
+
+  #release(): void {
+    const { journal, streamName } = this.engine;
+    if (journal !== null && journal.fault === null) this.#shipper.release(streamName, journal.number);
+  }
+
+  #setStatus(): void {
+    const { serving } = this.engine;
+    this.#status = serving === null ? 'no-bundle' : serving.isWarming ? 'warming' : 'running';
+  }
+
+  #sayHealth(): void {
+    if (!this.#isStopping) void this.#publisher.health(this.#report());
+  }
+
+  #report(): Parameters<Publisher['health']>[0] {
+    return { status: this.#status, lastChange: this.#lastChange, engine: this.engine, ship: this.#shipper.counts };
+  }
+
+  #guardDisk(what: string, work: () => void): void {
+    try {
+      work();
+    } catch (error) {
+      this.#ports.log.error(`${what}: ${(error as Error).message}`);
+    }
+  }
+}

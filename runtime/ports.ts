@@ -1,0 +1,15 @@
+/** What a gateway reaches of the world beside its broker. */
+import type { Clock } from './clock.ts';
+import type { Disk } from './disk.ts';
+import type { Log } from './log.ts';
+
+/** The world outside, passed in. */
+export interface GatewayPorts {
+  readonly clock: Clock;
+  readonly disk: Disk;
+  readonly log: Log;
+  /** 8 bytes for a fresh data folder; random unless given. */
+  readonly stream?: Uint8Array;
+  /** Largest first wait before reconnecting, ms; default as in the connection. */
+  readonly firstRetryMs?: number;
+}

@@ -1,0 +1,120 @@
+/** The health message: status, counts, the last change of bundle, versions. */
+import {
+  ARITHMETIC,
+  BUNDLE_FORMAT,
+  type BundleChange,
+  type HealthCounters,
+  type HealthStatus,
+  healthMessage,
+  MESSAGE_FORMAT,
+  SEGMENT_FORMAT,
+} from '@stillwell/protocol';
+import type { Engine } from '../engine.ts';
+import type { ShipCounts } from '../residuals/ship.ts';
+import { VERSION } from '../version.ts';
+import { type Judged, judge } from './quality.ts';
+
+/** 9999-12-31: what a will says stays true until it is replaced. */
+const FOREVER_MS = 253_402_300_799_000;
+const VERSIONS = {
+  stillwell: VERSION,
+  node: process.versions.node,
+  arithmetic: String(ARITHMETIC),
+  bundle_format: String(BUNDLE_FORMAT),
+  segment_format: String(SEGMENT_FORMAT),
+  message_format: String(MESSAGE_FORMAT),
+};
+
+export interface HealthReport {
+  readonly site: string;
+  readonly gateway: string;
+  readonly nowMs: number;
+  /** How long the message holds without a new one. */
+  readonly holdsMs: number;
+  readonly status: HealthStatus;
+  readonly lastChange: BundleChange | null;
+  readonly engine: Engine;
+  readonly ship: ShipCounts;
+  /** Times the connection was lost. */
+  readonly reconnects: number;
+}
+
+/** What the broker says when the gateway vanishes. */
+export function willPayload(site: string, gateway: string, nowMs: number): Uint8Array {
+  return healthMessage({
+    site,
+    gateway,
+    bundle: null,
+    sequence: null,
+    issuedAtMs: nowMs,
+    validUntilMs: FOREVER_MS,
+    quality: 'F',
+    qualityReason: 'the gateway vanished without a word',
+    status: 'lost',
+    counters: counted({
+      readings: 0,
+      refused: {},
+      late: 0,
+      ticks: 0,
+      segments_open: 0,
+      segments_waiting: 0,
+      segments_confirmed: 0,
+    }),
+    lastChange: null,
+    versions: VERSIONS,
+  });
+}
+
+/** Payload for the site's health topic. */
+export function healthPayload(report: HealthReport): Uint8Array {
+  const { engine, ship, status, nowMs } = report;
+  const { counters, journal, spool } = engine;
+  const checked = engine.serving?.checked ?? null;
+  return healthMessage({
+    site: report.site,
+    gateway: report.gateway,
+    bundle: checked?.digest ?? null,
+    sequence: checked?.sequence ?? null,
+    issuedAtMs: nowMs,
+    validUntilMs: status === 'stopped' ? FOREVER_MS : nowMs + report.holdsMs,
+    ...judgeGateway(report),
+    status,
+    counters: counted({
+      readings: counters.readings,
+      refused: counters.refused,
+      late: counters.late,
+      corrections: counters.corrections,
+      duplicates: counters.duplicates,
+      ticks: counters.ticks,
+      ticks_skipped: counters.skippedTicks,
+      segments_open: journal !== null && journal.ticks > 0 ? 1 : 0,
+      segments_waiting: spool.waiting.length,
+      segments_confirmed: ship.confirmed,
+      segments_closed: journal?.counts.closed ?? 0,
+      segments_sent: ship.sent,
+      segments_resent: ship.resent,
+      segments_parked: ship.parked,
+      segments_in_conflict: ship.conflicts,
+      segments_shed: journal?.counts.shedSegments ?? 0,
+      segments_lost: journal?.counts.lost ?? 0,
+      spool_bytes: spool.bytes,
+      reconnects: report.reconnects,
+    }),
+    lastChange: report.lastChange,
+    versions: VERSIONS,
+  });
+}
+
+/** The schema takes further counts beside `refused`, which its type cannot say. */
+function counted(counters: Record<string, number | Readonly<Record<string, number>>>): HealthCounters {
+  return counters as unknown as HealthCounters;
+}
+
+function judgeGateway({ engine, status }: HealthReport): Judged {
+  const { serving, journal } = engine;
+  if (status === 'stopped') return { quality: 'F', qualityReason: 'stopped' };
+  if (serving === null) return { quality: 'F', qualityReason: 'no bundle serves' };
+  const fault = journal?.fault ?? null;
+  if (fault !== null) return { quality: 'M', qualityReason: `nothing is being kept on disk: ${fault}` };
+  return judge(serving, false, null);
+}

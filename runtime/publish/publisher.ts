@@ -1,0 +1,114 @@
+/**
+ * Sends a tick's messages and the gateway's health. Forecasts go at QoS 0, retained: each replaces the one before, so a
+ * lost one is not worth a second try. Nothing is queued while the broker is away or slow.
+ */
+import type { BundleChange, HealthStatus, SiteTopics } from '@stillwell/protocol';
+import type { GatewayConfig } from '../config.ts';
+import type { Engine } from '../engine.ts';
+import type { Connection, Outgoing, Will } from '../mqtt/connection.ts';
+import type { GatewayPorts } from '../ports.ts';
+import type { ShipCounts } from '../residuals/ship.ts';
+import type { Serving } from '../serving.ts';
+import { writeStatus } from '../status.ts';
+import { forecastPayload, forecastsPayload } from './forecasts.ts';
+import { healthPayload, willPayload } from './health.ts';
+import { validUntil } from './moment.ts';
+import { statePayload } from './state.ts';
+
+const JSON_TYPE = 'application/json';
+const MSGPACK_TYPE = 'application/vnd.msgpack';
+/** Unsent bytes above which a tick's forecasts are skipped: the broker or the line is slower than the plant. */
+const MOST_BACKLOG_BYTES = 1024 * 1024;
+/** Health said more often than this is joined. */
+const LEAST_BETWEEN_MS = 1000;
+const LAST_WORD_MS = 800;
+/** A short cut of the line is no loss; MQTT 5 brokers wait so long with the will. */
+const WILL_DELAY_SECONDS = 10;
+
+export class Publisher {
+  reconnects = 0;
+  isCatchingUp = false;
+  readonly #config: GatewayConfig;
+  readonly #ports: GatewayPorts;
+  readonly #connection: Connection;
+  readonly #topics: SiteTopics;
+  #healthAt = Number.NEGATIVE_INFINITY;
+  #isHealthWanted = false;
+
+  constructor(config: GatewayConfig, ports: GatewayPorts, connection: Connection, topics: SiteTopics) {
+    this.#config = config;
+    this.#ports = ports;
+    this.#connection = connection;
+    this.#topics = topics;
+  }
+
+  static will(site: string, gateway: string, topic: string, nowMs: number): Will {
+    const payload = willPayload(site, gateway, nowMs);
+    return { topic, payload, qos: 1, retain: true, contentType: JSON_TYPE, delaySeconds: WILL_DELAY_SECONDS };
+  }
+
+  /** State and forecasts of the tick that `serving` has folded in last. */
+  tick(serving: Serving, lastReadingMs: Float64Array, issuedAtMs: number): void {
+    if (!this.#connection.isConnected || this.#connection.backlogBytes > MOST_BACKLOG_BYTES) return;
+    serving.computeBounds();
+    const { site, gateway, clock } = this.#config;
+    const occasion = { site, gateway, issuedAtMs, isCatchingUp: this.isCatchingUp };
+    // In event time the broker's clock knows nothing of the message's.
+    const leftMs = clock === 'wall' ? validUntil(serving.tick, site) - issuedAtMs : Number.NaN;
+    const send = (topic: string, payload: Uint8Array, contentType: string): void => {
+      const expiry = leftMs > 0 ? { expirySeconds: leftMs / 1000 } : {};
+      this.#send({ topic, payload, qos: 0, retain: true, contentType, ...expiry });
+    };
+    for (let i = 0; i < serving.model.signalCount; i++) {
+      const { name } = serving.checked.bundle.channels[i]!;
+      send(this.#topics.forecast(name), forecastPayload(serving, occasion, i, lastReadingMs[i]!), JSON_TYPE);
+    }
+    send(this.#topics.forecastAll, forecastsPayload(serving, occasion), MSGPACK_TYPE);
+    send(this.#topics.state, statePayload(serving, occasion), JSON_TYPE);
+  }
+
+  /** Whether health should be said again: its time has come, or something was left unsaid. */
+  isHealthDue(): boolean {
+    const since = this.#ports.clock.monotonic() - this.#healthAt;
+    return since >= this.#config.healthSeconds * 1000 || (this.#isHealthWanted && since >= LEAST_BETWEEN_MS);
+  }
+
+  /** Says how the gateway is, to the broker and in the data folder; at most once a second unless it is the last word. */
+  async health(report: {
+    readonly status: HealthStatus;
+    readonly lastChange: BundleChange | null;
+    readonly engine: Engine;
+    readonly ship: ShipCounts;
+  }): Promise<void> {
+    const now = this.#ports.clock.monotonic();
+    if (now - this.#healthAt < LEAST_BETWEEN_MS && report.status !== 'stopped') {
+      this.#isHealthWanted = true;
+      return;
+    }
+    this.#healthAt = now;
+    this.#isHealthWanted = false;
+    const { site, gateway, healthSeconds, data } = this.#config;
+    const payload = healthPayload({
+      ...report,
+      site: site.site,
+      gateway,
+      nowMs: this.#ports.clock.wall(),
+      holdsMs: 3 * healthSeconds * 1000,
+      reconnects: this.reconnects,
+    });
+    writeStatus(this.#ports.disk, data, payload);
+    const said = this.#send({ topic: this.#topics.health, payload, qos: 1, retain: true, contentType: JSON_TYPE });
+    // The last word must not wait for ever on a broker that hangs.
+    const patience = new Promise<void>((resolve) => this.#ports.clock.after(LAST_WORD_MS, resolve));
+    await (report.status === 'stopped' ? Promise.race([said, patience]) : said);
+  }
+
+  /** A message that does not get through is followed by a newer one, or by the will. */
+  async #send(message: Outgoing): Promise<void> {
+    try {
+      await this.#connection.publish(message);
+    } catch (error) {
+      this.#ports.log.debug((error as Error).message);
+    }
+  }
+}

@@ -1,0 +1,39 @@
+/**
+ * How far a forecast may be trusted, as a status letter in the sense of NAMUR NE 107: C while the filter warms up or
+ * catches up, S where a reading lies outside what the bundle was trained on, M where readings are missing. F, no usable
+ * model, is said in health: without a model nothing is forecast.
+ */
+import type { Quality } from '@stillwell/protocol';
+import type { Serving } from '../serving.ts';
+
+export interface Judged {
+  /** null: good. */
+  readonly quality: Quality | null;
+  readonly qualityReason: string | null;
+}
+
+/** A signal without readings for so many ticks counts as stale. */
+const STALE_TICKS = 3;
+
+/** Judges one signal, or all of them where `signal` is null. */
+export function judge(serving: Serving, isCatchingUp: boolean, signal: number | null): Judged {
+  if (serving.isWarming) {
+    const { warmed } = serving.bounds;
+    return bad('C', `warming up: ${warmed} of ${serving.model.warmupTicks} ticks`);
+  }
+  if (isCatchingUp) return bad('C', 'catching up after an interruption');
+  const { channels } = serving.checked.bundle;
+  const from = signal ?? 0;
+  const to = signal === null ? serving.model.signalCount : signal + 1;
+  for (let i = from; i < to; i++)
+    if (serving.isOutside[i] === 1) return bad('S', `${channels[i]!.name}: reading outside the trained range`);
+  for (let i = from; i < to; i++) {
+    const age = serving.state.age[i]!;
+    if (age >= STALE_TICKS) return bad('M', `${channels[i]!.name}: no reading for ${age} ticks or more`);
+  }
+  return { quality: null, qualityReason: null };
+}
+
+function bad(quality: Quality, qualityReason: string): Judged {
+  return { quality, qualityReason };
+}
