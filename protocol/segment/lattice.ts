@@ -5,7 +5,7 @@
  * Not for finding the lattice of a history; that is the trainer's work.
  */
 
-/** How near 1/step must lie to an integer m for readings to be taken as offset + k/m. Decimals such as 0.001 then come back exactly. */
+/** How near 1/step must lie to an integer m for readings to be taken as offset + k/m. Decimals such as 0.3 then come back exactly. */
 const RECIPROCAL_TOLERANCE = 1e-9;
 
 /**
@@ -26,7 +26,7 @@ export function latticeIndex(value: number, step: number, offset: number): numbe
  *
  * units   step and offset in the channel's unit; k an integer, NaN stays NaN
  * throws  nothing; the caller has checked the lattice
- * source  k/m rather than k × step where step = 1/m: division rounds once, so 3/1000 is the double nearest 0.003
+ * source  k/m rather than k × step where step = 1/m: division rounds once, so 3/10 is the double nearest 0.3, which 3 × 0.1 is not
  */
 export function latticeValue(k: number, step: number, offset: number): number {
   const reciprocal = Math.round(1 / step);
