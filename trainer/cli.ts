@@ -6,6 +6,8 @@
 import { ProtocolError } from '@stillwell/protocol';
 import { Command, CommanderError } from 'commander';
 import { deskCommand } from './commands/desk.ts';
+import { fitCommand } from './commands/fit.ts';
+import { hindcastCommand } from './commands/hindcast.ts';
 import { keysCommand } from './commands/keys.ts';
 import { rollCommand } from './commands/roll.ts';
 import { sealCommand } from './commands/seal.ts';
@@ -21,6 +23,8 @@ const commands: readonly (() => Command)[] = [
   showCommand,
   siteCommand,
   surveyCommand,
+  fitCommand,
+  hindcastCommand,
   rollCommand,
   watchCommand,
   deskCommand,

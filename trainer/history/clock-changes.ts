@@ -14,7 +14,7 @@ function skipped(change: ClockChange, zone: string): Finding {
     to: iso(change.atMs + change.spanMs),
     count: change.first,
     sentence: `${counted(change.first, 'time')} lie in the ${span} that clocks in ${zone} skipped at ${iso(change.atMs)}: the logger's clock did not change then. They were read with the offset before the change.`,
-    advice: 'Declare the fixed offset of the logger, for instance --time-zone +01:00, if its clock never changes.',
+    advice: `If its clock never changes, declare its fixed offset: --time-zone ${change.offsetBefore}.`,
   };
 }
 
@@ -33,7 +33,7 @@ function doubled(change: ClockChange, zone: string): Finding {
       : `Clocks in ${zone} went through the same ${span} twice around ${iso(change.atMs)}, but the history holds one pass only (${counted(change.first + change.second, 'time')}); it was taken as the ${change.first > 0 ? 'first' : 'second'}.`,
     advice: isResolved
       ? 'Nothing to do; times written with their zone need no such guess.'
-      : 'Readings of one pass are missing, or the logger’s clock does not change: declare its fixed offset then.',
+      : `Readings of one pass are missing, or the logger’s clock does not change: then declare its fixed offset, for instance --time-zone ${change.offsetBefore}.`,
   };
 }
 

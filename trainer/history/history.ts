@@ -40,6 +40,8 @@ export interface ClockChange {
   readonly kind: 'skipped' | 'doubled';
   /** Length of the skipped or doubled local time. */
   readonly spanMs: number;
+  /** Offset in force before it, "+01:00". */
+  readonly offsetBefore: string;
   /** skipped: times that cannot exist; doubled: times taken as the first pass. */
   readonly first: number;
   /** doubled: times taken as the second pass; 0 for skipped. */

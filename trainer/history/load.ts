@@ -16,14 +16,18 @@ export interface LoadedHistory {
   readonly lattices: readonly FoundLattice[];
 }
 
+/** Lays a history on ticks and surveys it; throws TrainError 'history' as layOnTicks does. */
+export function prepare(history: History, site: Site): LoadedHistory {
+  const lattices = findLattices(history, site);
+  const series = layOnTicks(history, site, lattices);
+  return { history, series, lattices, survey: surveyHistory(history, series, site, lattices) };
+}
+
 /**
  * Reads, lays on ticks and surveys.
  *
  * throws  TrainError 'file' or 'history' as readHistory and layOnTicks do
  */
 export async function loadHistory(files: readonly string[], site: Site, options: ReadOptions): Promise<LoadedHistory> {
-  const history = await readHistory(files, site, options);
-  const lattices = findLattices(history, site);
-  const series = layOnTicks(history, site, lattices);
-  return { history, series, lattices, survey: surveyHistory(history, series, site, lattices) };
+  return prepare(await readHistory(files, site, options), site);
 }

@@ -19,6 +19,8 @@ import { TimeReader } from './times.ts';
 export interface ReadOptions {
   /** Zone of times that carry none, before the site's own; null: the site's. */
   readonly zone: string | null;
+  /** Refuses times without a zone when `zone` is null, whatever the site says: for a site that is only a draft. */
+  readonly requireZone?: boolean;
   /** First time kept, ms; all when absent. */
   readonly fromMs?: number;
   /** First time not kept, ms; all when absent. */
@@ -102,7 +104,7 @@ export async function readHistory(files: readonly string[], site: Site, options:
     fromMs: options.fromMs ?? Number.NEGATIVE_INFINITY,
     untilMs: options.untilMs ?? Number.POSITIVE_INFINITY,
   });
-  const times = new TimeReader(options.zone ?? site.timeZone);
+  const times = new TimeReader(options.zone ?? (options.requireZone ? null : site.timeZone));
   const read: FileRead[] = [];
   let bytesBefore = 0;
   let rowsBefore = 0;

@@ -1,9 +1,22 @@
 /**
  * The survey as people read it in a terminal: a table with a line of data presence a signal, then the findings.
  */
+import { textTable } from '../text-table.ts';
 import { figure, lengthOf, percent } from './finding.ts';
 import type { Survey, SurveyedSignal } from './survey.ts';
 
+const HEAD = [
+  'signal',
+  'unit',
+  'readings',
+  'missing',
+  'every',
+  'step',
+  'least',
+  'median',
+  'greatest',
+  'presence over time',
+];
 const BARS = '·▁▂▃▄▅▆▇█';
 const WIDTH = 100;
 
@@ -15,7 +28,7 @@ function sparkline(presence: readonly number[]): string {
 }
 
 /** Folds a sentence to the width of a terminal, later lines set in. */
-export function folded(text: string, indent: string): string {
+function folded(text: string, indent: string): string {
   const lines: string[] = [];
   let line = '';
   for (const word of text.split(' ')) {
@@ -25,28 +38,6 @@ export function folded(text: string, indent: string): string {
     } else line = line === '' ? word : `${line} ${word}`;
   }
   return [...lines, line].join(`\n${indent}`);
-}
-
-/** Rows set in columns: the first to the left, the others to the right, the last as it is. */
-export function table(rows: readonly (readonly string[])[]): string {
-  const last = (rows[0] as readonly string[]).length - 1;
-  const widths = Array.from({ length: last }, (_, column) =>
-    Math.max(...rows.map((row) => (row[column] as string).length)),
-  );
-  return rows
-    .map((row) =>
-      row
-        .map((text, column) =>
-          column === last
-            ? text
-            : column === 0
-              ? text.padEnd(widths[0] as number)
-              : text.padStart(widths[column] as number),
-        )
-        .join('  ')
-        .trimEnd(),
-    )
-    .join('\n');
 }
 
 function orDash(value: number | null, say: (value: number) => string): string {
@@ -78,10 +69,7 @@ export function surveyText(survey: Survey): string {
     `Survey of ${survey.site}: ${survey.files.length === 1 ? 'one file' : `${survey.files.length} files`} (${kinds}), ${rows} rows`,
     `${survey.from} to ${survey.to}, ${survey.ticks} ticks of ${lengthOf(survey.tickS * 1000)}${survey.suggestedTickS === survey.tickS ? '' : ` (the readings suggest ${lengthOf(survey.suggestedTickS * 1000)})`}${survey.zone === null ? '' : `, times without zone read as ${survey.zone}`}`,
     '',
-    table([
-      ['signal', 'unit', 'readings', 'missing', 'every', 'step', 'least', 'median', 'greatest', 'presence over time'],
-      ...survey.signals.map(signalRow),
-    ]),
+    textTable(HEAD, survey.signals.map(signalRow), [2, 3, 4, 5, 6, 7, 8], ''),
     '',
   ];
   if (survey.findings.length === 0) lines.push('Nothing found that needs a word.');

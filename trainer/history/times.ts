@@ -76,7 +76,7 @@ export class TimeReader {
   get changes(): readonly ClockChange[] {
     return [...this.#changes]
       .sort((a, b) => a[0] - b[0])
-      .map(([atMs, found]) => ({ atMs, spanMs: this.#zone?.spanOf(atMs) ?? 0, ...found }));
+      .map(([atMs, found]) => ({ atMs, ...(this.#zone as ZoneRules).describe(atMs), ...found }));
   }
 
   /**

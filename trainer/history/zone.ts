@@ -13,6 +13,22 @@ const FIRST_MS = Date.UTC(1970, 0, 1);
 const LAST_MS = Date.UTC(2100, 0, 1);
 const FIXED = /^(?:UTC|GMT)?([+-])(\d{2}):?(\d{2})$/;
 
+/**
+ * The IANA name of a fixed offset of whole hours, whose sign counts the other way ("+02:00" is "Etc/GMT-2"); other names
+ * as they are.
+ */
+export function fixedZoneName(zone: string): string {
+  const fixed = FIXED.exec(zone);
+  if (!fixed) return zone;
+  const hours = Number(fixed[2]);
+  if (fixed[3] !== '00' || hours > 12)
+    throw new TrainError(
+      'options',
+      `time zone: expected an IANA name or an offset of whole hours for a site file, got "${zone}"; name the zone, such as "Asia/Kolkata"`,
+    );
+  return hours === 0 ? 'UTC' : `Etc/GMT${fixed[1] === '+' ? '-' : '+'}${hours}`;
+}
+
 /** Local time at an instant, as text "GMT+01:00", from the platform. */
 function offsetReader(zone: string): (utcMs: number) => number {
   let format: Intl.DateTimeFormat;
@@ -133,9 +149,15 @@ export class ZoneRules {
     return true;
   }
 
-  /** Length of the skipped or doubled local time at a change, ms. */
-  spanOf(changeMs: number): number {
+  /** Length of the skipped or doubled local time at a change, ms, and the offset in force before it, as "+01:00". */
+  describe(changeMs: number): { readonly spanMs: number; readonly offsetBefore: string } {
     const k = this.changes.indexOf(changeMs);
-    return Math.abs((this.offsets[k + 1] as number) - (this.offsets[k] as number));
+    const before = this.offsets[k] as number;
+    const minutes = Math.abs(before) / 60_000;
+    const two = (value: number): string => String(Math.floor(value)).padStart(2, '0');
+    return {
+      spanMs: Math.abs((this.offsets[k + 1] as number) - before),
+      offsetBefore: `${before < 0 ? '-' : '+'}${two(minutes / 60)}:${two(minutes % 60)}`,
+    };
   }
 }

@@ -1,0 +1,163 @@
+/**
+ * A first site file from a history: what the readings tell (signals, tick, resolution, ranges), with room for what they do
+ * not. A person is expected to go over it; the comments say where.
+ */
+import { DEFAULT_RESIDUAL_BYTES_PER_DAY, DEFAULT_ROOT, type Signal, type Site } from '@stillwell/protocol';
+import type { Progress } from '../progress.ts';
+import { cadenceOf, suggestTick } from './cadence.ts';
+import { type Discovered, discoverSignals } from './discover.ts';
+import { counted, figure, lengthOf } from './finding.ts';
+import type { ChannelReadings, History } from './history.ts';
+import { plausibleSpan } from './plausible.ts';
+import { readHistory } from './read.ts';
+import { type FoundLattice, findLattice } from './resolution.ts';
+import { timeOrder } from './ticks.ts';
+import { fixedZoneName } from './zone.ts';
+
+const DAY_MS = 86_400_000;
+/** A day ahead where that many ticks make one: fewer teach little of a day, more cost bundle and sharpness. */
+const DAY_HORIZON = [24, 144] as const;
+const DEFAULT_HORIZON = 24;
+const MOST_LATENESS_MS = 10_000;
+/** A signal with no more values than these, all whole, is a switch or a count. */
+const SWITCH_VALUES = 4;
+
+/** A draft, what to say beside its lines by field path, and the readings it was made from. */
+export interface SiteDraft {
+  readonly site: Site;
+  /** The same with nothing declared that the readings were to be checked against. */
+  readonly undeclared: Site;
+  readonly history: History;
+  readonly comments: Readonly<Record<string, string>>;
+}
+
+export interface DraftOptions {
+  readonly name: string;
+  readonly equipmentClass: string;
+  /** Zone of times that carry none; null: they are refused. */
+  readonly zone: string | null;
+  readonly progress?: Progress;
+}
+
+function signalOf(found: Discovered, siteName: string): Signal {
+  return {
+    name: found.name,
+    topic: found.topic ?? `plant/${siteName}/${found.name}`,
+    payload: found.payload,
+    unit: found.unit,
+    resolution: null,
+    range: null,
+    aggregate: 'mean',
+    limits: { highHigh: null, high: null, low: null, lowLow: null },
+    column: found.column,
+  };
+}
+
+/** Bounds a whole span beyond what was seen, on figures a person would write. */
+function rangeOf(signal: Signal, readings: ChannelReadings): readonly [number, number] | null {
+  const { low, high } = plausibleSpan(signal, readings.values);
+  let least = Number.POSITIVE_INFINITY;
+  let greatest = Number.NEGATIVE_INFINITY;
+  for (const value of readings.values) {
+    if (Number.isNaN(value) || value < low || value > high) continue;
+    if (value < least) least = value;
+    if (value > greatest) greatest = value;
+  }
+  if (least > greatest) return null;
+  const span = greatest - least || Math.max(1, Math.abs(least));
+  const unit = 10 ** Math.floor(Math.log10(span));
+  const whole = (k: number): number => Number((k * unit).toPrecision(12));
+  return [whole(Math.floor((least - span) / unit)), whole(Math.ceil((greatest + span) / unit))];
+}
+
+function isSwitch(values: Float64Array): boolean {
+  const seen = new Set<number>();
+  for (const value of values) {
+    if (Number.isNaN(value)) continue;
+    if (!Number.isInteger(value)) return false;
+    seen.add(value);
+    if (seen.size > SWITCH_VALUES) return false;
+  }
+  return true;
+}
+
+function resolutionOf(lattice: FoundLattice): number | null {
+  return lattice.how === 'no readings' || lattice.offset !== 0 ? null : lattice.step;
+}
+
+function filledIn(signal: Signal, readings: ChannelReadings): Signal {
+  const range = rangeOf(signal, readings);
+  const { low, high } = plausibleSpan(signal, readings.values);
+  const believed = readings.values.filter((value) => value >= low && value <= high);
+  return {
+    ...signal,
+    range,
+    resolution: resolutionOf(findLattice(believed)),
+    aggregate: isSwitch(believed) ? 'last' : 'mean',
+  };
+}
+
+function horizonOf(tickMs: number): number {
+  const day = DAY_MS / tickMs;
+  return Number.isInteger(day) && day >= DAY_HORIZON[0] && day <= DAY_HORIZON[1] ? day : DEFAULT_HORIZON;
+}
+
+function commentsOf(site: Site, history: History, intervalsMs: readonly number[]): Record<string, string> {
+  const comments: Record<string, string> = {
+    '': `A first site file, found in ${counted(history.files.length, 'history file')}. Go over it: units, topics, ranges, and which signals are inputs (move those to "inputs").\nWhat readings cannot tell was left at its default. Advisory only: nothing here belongs to a protection or interlock function.`,
+    time_zone:
+      history.zone === null
+        ? 'the files carry their own zone; set this to where the plant stands, for times of day'
+        : 'as given for times without a zone',
+    tick: `readings come every ${[...new Set(intervalsMs.filter((ms) => ms > 0).map(lengthOf))].join(', ')}`,
+    horizon: `ticks ahead: ${lengthOf(site.horizon * site.tickMs)}`,
+    lateness: 'how long a tick waits for late readings',
+    residual_budget: 'bytes a day over the thin link',
+  };
+  site.signals.forEach((signal, i) => {
+    const at = `signals[${i}]`;
+    if (history.files.every(({ format }) => format !== 'MQTT capture'))
+      comments[`${at}.topic`] = 'a proposal: set it to the plant’s own topic';
+    if (signal.unit === '1')
+      comments[`${at}.unit`] = 'UCUM code, for instance Cel, m3/h, bar, %; 1 where dimensionless';
+    if (signal.resolution !== null)
+      comments[`${at}.resolution`] = `found: every reading is a multiple of ${figure(signal.resolution)}`;
+    comments[`${at}.range`] =
+      'what was seen, and as much again on either side; narrow it to what is physically possible';
+  });
+  return comments;
+}
+
+/**
+ * Reads the files through and drafts a site file.
+ *
+ * throws  TrainError as readHistory does
+ */
+export async function draftSite(files: readonly string[], options: DraftOptions): Promise<SiteDraft> {
+  const signals = (await discoverSignals(files)).map((found) => signalOf(found, options.name));
+  const rough: Site = {
+    site: options.name,
+    equipmentClass: options.equipmentClass,
+    timeZone: options.zone === null ? 'UTC' : fixedZoneName(options.zone),
+    tickMs: 1000,
+    horizon: DEFAULT_HORIZON,
+    latenessMs: 0,
+    root: DEFAULT_ROOT,
+    residualBytesPerDay: DEFAULT_RESIDUAL_BYTES_PER_DAY,
+    signals,
+    inputs: [],
+    calendar: { timeOfDay: true, dayOfWeek: true, holidays: [] },
+  };
+  const progress = options.progress === undefined ? {} : { progress: options.progress };
+  const history = await readHistory(files, rough, { zone: options.zone, requireZone: true, ...progress });
+  const intervals = history.channels.map((channel) => cadenceOf(channel, timeOrder(channel.times)).intervalMs);
+  const tickMs = suggestTick(intervals);
+  const site: Site = {
+    ...rough,
+    tickMs,
+    horizon: horizonOf(tickMs),
+    latenessMs: Math.min(Math.ceil(tickMs / 10), MOST_LATENESS_MS),
+    signals: signals.map((signal, c) => filledIn(signal, history.channels[c] as ChannelReadings)),
+  };
+  return { site, undeclared: { ...site, signals }, history, comments: commentsOf(site, history, intervals) };
+}
