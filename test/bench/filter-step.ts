@@ -148,18 +148,22 @@ function quietest(roundRuns: number, work: () => unknown): { p50: number; p99: n
   return least;
 }
 
-/** Bytes put on the heap in a tick: growth over stretches too short for a collection, which would hide it. */
+/**
+ * Bytes put on the heap in a tick: growth over the last of many stretches, each after a collection and too short for
+ * another, which would hide growth; the last, since the engine goes on compiling for a while and keeps its code there.
+ */
 function heapGrowth(tick: () => void): number {
   setFlagsFromString('--expose_gc');
   const collect = runInNewContext('gc') as () => void;
+  const stretch = HEAP_TICKS / 20;
   let grown = 0;
-  for (let done = 0; done < HEAP_TICKS; done += 10_000) {
+  for (let done = 0; done < HEAP_TICKS; done += stretch) {
     collect();
     const before = process.memoryUsage().heapUsed;
-    for (let n = 0; n < 10_000; n++) tick();
-    grown += Math.max(0, process.memoryUsage().heapUsed - before);
+    for (let n = 0; n < stretch; n++) tick();
+    grown = process.memoryUsage().heapUsed - before;
   }
-  return grown / HEAP_TICKS;
+  return Math.max(0, grown / stretch);
 }
 
 const STATSMODELS = `
@@ -174,8 +178,8 @@ k['selection'] = np.eye(d)
 k['state_cov'] = np.eye(d) * .1
 k['obs_cov'] = np.eye(ny) * .1
 k.initialize_known(np.zeros(d), np.eye(d))
-y = rng.standard_normal((ny, T))
-y[rng.random((ny, T)) < .0625] = np.nan
+y = rng.standard_normal((T, ny))
+y[rng.random((T, ny)) < .0625] = np.nan
 k.bind(y)
 best = 1e9
 for _ in range(5):
@@ -185,15 +189,17 @@ print(1e6 * best / T)
 
 /** Microseconds a step of statsmodels' Kalman filter; null, with a note, where it is not installed. */
 function statsmodelsStep(options: BenchOptions): number | null {
-  let why = '';
+  const found: string[] = [];
   // Debian's own first: another python3 earlier in the path does not see Debian's packages.
   for (const python of ['/usr/bin/python3', 'python3']) {
     const ran = spawnSync(python, ['-c', STATSMODELS], { encoding: 'utf8', timeout: 120_000 });
     const micros = Number.parseFloat(ran.stdout ?? '');
     if (ran.status === 0 && micros > 0) return micros;
-    why = ran.error?.message ?? (ran.stderr ?? '').trim().split('\n').at(-1) ?? '';
+    found.push(`${python}: ${ran.error?.message ?? (ran.stderr ?? '').trim().split('\n').at(-1)}`);
   }
-  options.note(`peer left out: statsmodels' Kalman filter (${why}); install the Debian package python3-statsmodels`);
+  options.note(
+    `peer left out: statsmodels' Kalman filter (${found.join('; ')}); install the Debian package python3-statsmodels`,
+  );
   return null;
 }
 
