@@ -39,8 +39,8 @@ export function fitReport({ site, survey, result }: ReportInput): string {
 ${summary(site, result)}
 <p class="caution"><strong>${escapeHtml(ADVISORY)}</strong> Local codes and licensed practice decide.</p>
 <h2>How far ahead it can be trusted</h2>
-<p>How much smaller the squared error is than that of the strongest obvious guess (named in the cell) at that distance,
-on held-out time that the model never saw: 0 % is no better, 100 % would be perfect, below 0 % the guess is better.</p>
+<p>How much smaller the squared error is than that of the strongest rival (named in the cell) at that distance,
+on held-out time that the model never saw: 0 % is no better, 100 % would be perfect, below 0 % the rival is better.</p>
 ${skillTable(result.hindcast)}
 ${verdictTable(result)}
 <h2>Forecasts over held-out days</h2>
