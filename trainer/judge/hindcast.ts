@@ -89,6 +89,13 @@ export function hindcast(model: LinearModel, series: Series, span: HindcastSpan,
   return tally.result(model, series, units);
 }
 
+/** Largest divisor of the horizon up to `wanted`, so that kept paths can be laid end to end without a hole. */
+function strideOfPaths(horizon: number, wanted: number): number {
+  let stride = Math.max(1, Math.min(horizon, wanted));
+  while (horizon % stride !== 0) stride--;
+  return stride;
+}
+
 class Tally {
   readonly #ny: number;
   readonly #horizon: number;
@@ -126,7 +133,7 @@ class Tally {
     this.#residuals = readings.map(() => new Float64Array(to - from).fill(Number.NaN));
     this.#next = new Float64Array(ny).fill(Number.NaN);
     this.#path = new Float64Array(horizon);
-    this.#every = Math.max(1, Math.floor((to - from - horizon + 1) / KEPT_PATHS));
+    this.#every = strideOfPaths(horizon, Math.floor((to - from - horizon + 1) / KEPT_PATHS));
   }
 
   visit(moment: Moment, series: Series): void {
