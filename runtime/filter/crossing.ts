@@ -61,7 +61,8 @@ export function crossing(
     mean *= carried;
     variance = carried * carried * variance + sd * sd * (1 - kept);
     const spread = Math.sqrt(variance);
-    const a = (room - mean) / spread;
+    // Beyond 40 both table ends are long past, and a product with an infinity is kept away.
+    const a = Math.min(40, Math.max(-40, (room - mean) / spread));
     const chance = Math.max(LEAST_CHANCE, normalCdf(a));
     const pull = normalDensity(a) / chance;
     mean -= spread * pull;

@@ -2,6 +2,7 @@
 import {
   createBounds,
   createState,
+  crossing,
   forecastPath,
   intervalOf,
   type LinearModel,
@@ -68,6 +69,14 @@ const survive = (model: LinearModel, ticks: number, next: (n: number, c: number)
     trackBounds(model, bounds, state, median);
     intervalOf(model, bounds, state, median, lower, upper);
     if (strayed(watched) !== 0) throw new Error(`not finite at tick ${n}, readings ${readings}`);
+    if (n % 64 === 0) {
+      for (const side of ['above', 'below'] as const) {
+        const { probability } = crossing(model, bounds, state, median, 0, HOSTILE[n % 17], side);
+        if (Number.isFinite(HOSTILE[n % 17]) && !(probability >= 0 && probability <= 1)) {
+          throw new Error(`probability ${probability} at tick ${n}`);
+        }
+      }
+    }
     for (let k = 0; k < size; k++) {
       if (lower[k] > median[k] || median[k] > upper[k]) throw new Error(`bounds crossed at tick ${n}`);
     }
