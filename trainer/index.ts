@@ -1,1 +1,1 @@
-export {};
+export { type Archive, type ArchivedChannel, readArchive } from './desk/archive.ts';
