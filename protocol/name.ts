@@ -4,7 +4,7 @@
  */
 import { MAX_NAME_BYTES } from './limits.ts';
 
-const NAME = /^[\p{L}\p{N}_][\p{L}\p{M}\p{N}._-]*$/u;
+const NAME = /^[\p{L}\p{Nd}_][\p{L}\p{M}\p{Nd}._-]*$/u;
 
 /** What a name may be, for messages. */
 export const NAME_RULE = `a name of letters, digits, ".", "-" and "_", at most ${MAX_NAME_BYTES} bytes`;
@@ -17,8 +17,8 @@ export const isName = (text: string): boolean =>
 export const toName = (label: string): string => {
   let name = label
     .normalize('NFC')
-    .replace(/[^\p{L}\p{M}\p{N}.-]+/gu, '_')
-    .replace(/^[^\p{L}\p{N}]+|[_.-]+$/gu, '');
+    .replace(/[^\p{L}\p{M}\p{Nd}.-]+/gu, '_')
+    .replace(/^[^\p{L}\p{Nd}]+|[_.-]+$/gu, '');
   while (Buffer.byteLength(name) > MAX_NAME_BYTES) name = Array.from(name).slice(0, -1).join('');
   return isName(name) ? name : 'unnamed';
 };

@@ -1,0 +1,174 @@
+import fc from 'fast-check';
+import { describe, expect, test } from 'vitest';
+import { formatDuration, parseDuration } from '../../protocol/duration.ts';
+import { isName, toName } from '../../protocol/name.ts';
+import { nearestName } from '../../protocol/nearest.ts';
+import { type Input, type Limits, parseSite, type Signal, type Site } from '../../protocol/site.ts';
+import { formatSite } from '../../protocol/site-format.ts';
+
+const SEED = 20260308;
+const record = <T>(model: { [K in keyof T]: fc.Arbitrary<T[K]> }) => fc.record<T>(model, { noNullPrototype: true });
+const name = fc.string({ unit: 'grapheme', minLength: 1, maxLength: 12 }).map(toName);
+const limits: fc.Arbitrary<Limits> = fc
+  .tuple(
+    fc.uniqueArray(fc.double({ min: -100, max: 100, noNaN: true }), { minLength: 4, maxLength: 4 }),
+    fc.array(fc.boolean(), { minLength: 4, maxLength: 4 }),
+  )
+  .map(([levels, isSet]) => {
+    const [lowLow, low, high, highHigh] = levels.sort((a, b) => a - b).map((value, i) => (isSet[i] ? value : null));
+    return { highHigh: highHigh!, high: high!, low: low!, lowLow: lowLow! };
+  });
+const payload: fc.Arbitrary<Signal['payload']> = fc.oneof(
+  fc.constant({ kind: 'number' as const }),
+  record({
+    kind: fc.constantFrom('json' as const, 'msgpack' as const),
+    value: fc.constantFrom('', '/v', '/a~1b/0', '/ä "x"'),
+    time: fc.constantFrom(null, '/t', ''),
+  }),
+);
+const signal: fc.Arbitrary<Signal> = record({
+  name,
+  topic: fc.option(fc.constantFrom('a/b', '+/x', 'plant/#', 'yes', '123', ' spaced out ', '#')),
+  payload,
+  unit: fc.constantFrom('1', 'Cel', 'm3/h', '%', '[degF]', 'kW.h'),
+  resolution: fc.option(fc.double({ min: 1e-9, max: 10, noNaN: true })),
+  range: fc.option(
+    fc.tuple(fc.double({ min: -1e6, max: -100, noNaN: true }), fc.double({ min: 100, max: 1e6, noNaN: true })),
+  ),
+  aggregate: fc.constantFrom('last', 'mean', 'min', 'max', 'sum', 'increment'),
+  limits,
+  column: fc.string({ unit: 'grapheme', minLength: 1, maxLength: 12 }),
+});
+const input: fc.Arbitrary<Input> = fc
+  .tuple(signal, fc.constantFrom(null, 'plan/x'))
+  .map(([one, planTopic]) => ({ ...one, planTopic }));
+const site: fc.Arbitrary<Site> = record({
+  site: name,
+  equipmentClass: name,
+  timeZone: fc.constantFrom('UTC', 'Europe/Vienna', 'America/St_Johns'),
+  tickMs: fc.integer({ min: 100, max: 86_400_000 }),
+  horizon: fc.integer({ min: 1, max: 1024 }),
+  latenessMs: fc.nat(600_000),
+  root: fc.constantFrom('stillwell', 'a/b/c'),
+  residualBytesPerDay: fc.integer({ min: 1024, max: 1e9 }),
+  signals: fc.array(signal, { minLength: 1, maxLength: 4 }),
+  inputs: fc.array(input, { maxLength: 2 }),
+  calendar: record({
+    timeOfDay: fc.boolean(),
+    dayOfWeek: fc.boolean(),
+    holidays: fc.subarray(['2026-01-01', '2026-12-25']),
+  }),
+}).map((one) => {
+  // Names and readings must be distinct: number the names, keep a topic on the first channel alone.
+  const own = <T extends Signal>(channel: T, i: number): T => ({
+    ...channel,
+    name: toName(`${Array.from(channel.name).slice(0, 5).join('')}_${i}`),
+    topic: i === 0 ? channel.topic : null,
+  });
+  return {
+    ...one,
+    signals: one.signals.map(own),
+    inputs: one.inputs.map((channel, i) => own(channel, i + one.signals.length)),
+  };
+});
+
+describe('formatSite', () => {
+  test('what it writes reads back to the same site, with or without comments', () => {
+    fc.assert(
+      fc.property(site, fc.string({ unit: 'grapheme' }), (one, comment) => {
+        expect(parseSite(formatSite(one))).toStrictEqual(one);
+        const comments = {
+          '': comment,
+          'signals[0].resolution': comment,
+          'signals[0].range': comment,
+          signals: comment,
+          'signals[0].payload': comment,
+          'calendar.holidays': comment,
+          nowhere: comment,
+        };
+        expect(parseSite(formatSite(one, comments))).toStrictEqual(one);
+      }),
+      { seed: SEED, numRuns: 60 },
+    );
+  });
+
+  test('comments stand beside their fields', () => {
+    const one = parseSite(
+      'site: a\ntime_zone: UTC\ntick: 10s\nhorizon: 6\nsignals:\n  - name: t\n    resolution: 0.1\n    range: [0, 9]\n',
+    );
+    const text = formatSite(one, {
+      '': 'First file.\nCheck it.',
+      'signals[0].resolution': 'found in the history',
+      'signals[0].range': 'widest seen',
+    });
+    expect(text).toContain('# First file.\n# Check it.\n');
+    expect(text).toContain('resolution: 0.1 # found in the history\n');
+    expect(text).toContain('range: [0, 9] # widest seen\n');
+  });
+});
+
+describe('durations', () => {
+  test.each([
+    ['10s', 10_000],
+    ['1min', 60_000],
+    ['1.5h', 5_400_000],
+    ['0.1min', 6000],
+    ['250ms', 250],
+    ['1d', 86_400_000],
+    ['15 min', 900_000],
+  ])('%s', (text, ms) => expect(parseDuration(text)).toBe(ms));
+  test.each([['1m'], ['min'], ['-1s'], ['1e3s'], ['0.0001s'], ['1h30min'], ['']])('%s is none', (text) =>
+    expect(parseDuration(text)).toBeNull(),
+  );
+  test('written ones read back', () => {
+    fc.assert(
+      fc.property(fc.nat(1e9), (ms) => {
+        expect(parseDuration(formatDuration(ms))).toBe(ms);
+      }),
+      { seed: SEED },
+    );
+    expect([0, 90_000, 3_600_000, 86_400_000].map(formatDuration)).toEqual(['0ms', '90s', '1h', '1d']);
+  });
+});
+
+describe('names', () => {
+  test('any label gives a name, and a name stays itself', () => {
+    fc.assert(
+      fc.property(fc.string({ unit: 'grapheme', maxLength: 90 }), (label) => {
+        expect(isName(toName(label))).toBe(true);
+        expect(toName(toName(label))).toBe(toName(label));
+      }),
+      { seed: SEED },
+    );
+  });
+  test.each([
+    ['Flow rate [m³/h]', 'Flow_rate_m_h'],
+    ['T1', 'T1'],
+    ['  Druck (bar) ', 'Druck_bar'],
+    ['../../etc', 'etc'],
+    ['a/b+c#', 'a_b_c'],
+    ['!!!', 'unnamed'],
+  ])('%s gives %s', (label, expected) => expect(toName(label)).toBe(expected));
+  test.each([['a/b'], ['+'], ['#'], ['.hidden'], ['-x'], [''], ['a b'], ['$SYS'], ['a\u0308'], ['x'.repeat(65)]])(
+    '%s is none',
+    (text) => {
+      expect(isName(text)).toBe(false);
+    },
+  );
+});
+
+describe('the nearest name', () => {
+  const keys = ['resolution', 'range', 'topic', 'time_zone', 'high', 'high_high'];
+  test.each([
+    ['resoluton', 'resolution'],
+    ['reslouiton', 'resolution'],
+    ['timezone', 'time_zone'],
+    ['TimeZone', 'time_zone'],
+    ['topci', 'topic'],
+    ['hihg', 'high'],
+    ['highhigh', 'high_high'],
+  ])('%s: %s', (typed, meant) => expect(nearestName(typed, keys)).toBe(meant));
+  test.each([['delay'], ['colour'], ['x'], ['resolutely different']])('%s: none', (typed) =>
+    expect(nearestName(typed, keys)).toBeNull(),
+  );
+});
