@@ -38,7 +38,20 @@ export function errorChart(hindcast: Hindcast, signal: number): string {
       y: { label: `root mean squared error (${hindcast.units[signal]})`, grid: true, zero: true },
       color: { domain: [...rivals, 'this model'], range: [...palette.rivals.slice(0, rivals.length), palette.ours] },
       marks: [
-        Plot.lineY(theirs, { x: 'ahead', y: 'error', stroke: 'rival', strokeWidth: 1.3 }),
+        // Rivals that coincide stay visible: the first wide and pale beneath, every later one with its own dashes.
+        ...rivals.map((name, index) =>
+          Plot.lineY(
+            theirs.filter((point) => point.rival === name),
+            {
+              x: 'ahead',
+              y: 'error',
+              stroke: 'rival',
+              strokeWidth: index === 0 ? 3.5 : 1.4,
+              strokeOpacity: index === 0 ? 0.6 : 1,
+              strokeDasharray: index === 0 ? 'none' : `${3 + 3 * index} 3`,
+            },
+          ),
+        ),
         Plot.lineY(ours, { x: 'ahead', y: 'error', stroke: () => 'this model', strokeWidth: 2.6 }),
         Plot.dot(horizon === 1 ? ours : [], { x: 'ahead', y: 'error', fill: palette.ours }),
       ],
