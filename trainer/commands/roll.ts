@@ -1,4 +1,5 @@
 /** `stillwell roll`: hands a sealed bundle to its site by the broker and waits for the gateway's word. */
+import type { HealthMessage } from '@stillwell/protocol';
 import { Command } from 'commander';
 import { hex, openBundleFile } from '../bundle-file.ts';
 import type { RollOutcome } from '../desk/roll.ts';
@@ -72,6 +73,12 @@ function outcomeText(outcome: RollOutcome, site: string, waitSeconds: number): s
         ? `${site}: no gateway spoke within ${waitSeconds} s; the bundle stays on its topic (retained). Check that the ` +
             'gateway runs, that both use the same broker, root and site name'
         : `${site}: ${gateway} (${outcome.health.status}) said nothing about the bundle within ${waitSeconds} s and serves ` +
-            `${outcome.health.bundle?.slice(0, 16) ?? 'none'}; the bundle stays on its topic (retained)`;
+            `${outcome.health.bundle?.slice(0, 16) ?? 'none'}${lastRefusal(outcome.health)}; the bundle stays on its topic (retained)`;
   }
+}
+
+/** A gateway speaks once about a bundle it refuses; rolled out again, the word is an old one. */
+function lastRefusal(health: HealthMessage): string {
+  const change = health.last_change;
+  return change?.outcome === 'refused' ? `; it last refused one at ${change.at}: ${change.reason}` : '';
 }

@@ -31,8 +31,6 @@ export interface RollOutcome {
   readonly health: HealthMessage | null;
 }
 
-/** Outcomes of a change that end the waiting without the bundle serving are all but these. */
-const UNDER_WAY = new Set(['changed', 'accepted', 'warming', 'trial']);
 /** The retained health of before, if there is one, has come by then. */
 const SETTLE_MS = 300;
 
@@ -105,9 +103,8 @@ function standing(health: HealthMessage, options: RollOptions, before: string | 
     return { outcome: 'serving', reason: null } as const;
   }
   const change = health.last_change;
-  const isNews = changeOf(health) !== before;
-  if (change !== null && isNews && change.to === options.digest && !UNDER_WAY.has(change.outcome)) {
-    return { outcome: 'refused', reason: change.reason ?? change.outcome } as const;
+  if (change?.outcome === 'refused' && changeOf(health) !== before) {
+    return { outcome: 'refused', reason: change.reason ?? 'no reason given' } as const;
   }
   return { outcome: null, reason: null };
 }
