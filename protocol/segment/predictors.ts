@@ -5,7 +5,9 @@
  *   forecast   the filter's one-step forecast as it stands                                   narrow and wide
  *   last       the last value                                                                narrow and wide
  *   repeat     exactly the last value
- *   levels     the count table of values seen (levels.ts)
+ *   levels     the count table of values that come back (levels.ts)
+ *
+ * The first three stand twice: on every index, and on the values already seen alone (seen.ts), mixed by a share of its own.
  *
  * Each of the first three errs by a Student t (student.ts) whose scale follows its own recent errors. The weights follow
  * the share of each reading that each predictor explains (expectation-maximisation on the run: Titterington 1984). The
@@ -14,6 +16,7 @@
  * Float64 with + - × ÷ √ in a fixed order only: the same bits everywhere. Not for judging forecasts.
  */
 import { LevelTable } from './levels.ts';
+import { SeenValues } from './seen.ts';
 import { upperTail } from './student.ts';
 
 const SPREADS = [0.45, 0.9] as const;
@@ -31,6 +34,18 @@ const WEIGHT_PRIOR = 3;
 const WEIGHT_SHARED = 0.001;
 /** Below this weight the count table is left out of the sums, which it would slow for nothing. */
 const SILENT = 1 / 512;
+/** Share of the seen values at the start, and how it moves. */
+const FIRST_SEEN = 0.1;
+const SEEN_RATE = 1 / 50;
+const SEEN_PRIOR = 8;
+const LEAST_SEEN = 0.01;
+const MOST_SEEN = 0.995;
+/** Seen values join the sums while they name readings this much better on the run than plain indices do. */
+const WORTH = 1.05;
+const WORTH_RATE = 1 / 32;
+const FIRST_WORTH = 1.5;
+/** One reading counts so much at most. */
+const MOST_WORTH = 8;
 /** Below this probability nothing is learnt about weights: the differences of tails have no digits left. */
 const LEAST_TOTAL = 1e-200;
 const SCALE_RATE = 0.02;
@@ -59,6 +74,10 @@ export class Predictors {
   /** 1 / width of each continuous predictor. */
   readonly #inverse = new Float64Array(CONTINUOUS);
   readonly #levels = new LevelTable();
+  readonly #seenValues = new SeenValues();
+  #seenShare = FIRST_SEEN;
+  #seenWorth = FIRST_WORTH;
+  #seenSpeak = false;
   readonly #scalePrior: number;
   /** The set in use for the reading at hand. */
   #weights: Float64Array = this.#weightSets[0];
@@ -106,6 +125,7 @@ export class Predictors {
     this.#weights = this.#weightSets[this.#repeated];
     this.#levelsKnow = this.#levels.prepare(this.#last);
     this.#levelsSpeak = this.#levelsKnow && this.#weights[LEVELS]! > SILENT;
+    this.#seenSpeak = this.#seenValues.isReady && this.#seenWorth > WORTH;
     const heaviest = this.#heaviest();
     this.#pivot = heaviest < CONTINUOUS ? Math.round(this.#centres[heaviest >> 1]!) : this.#last;
     this.#width = heaviest < CONTINUOUS ? 1 / this.#inverse[heaviest]! : 0;
@@ -123,7 +143,19 @@ export class Predictors {
 
   /** Probability that sign × index ≥ x, for whole x; falls short of 1 by the table's weight where it is silent. */
   tail(sign: number, x: number): number {
-    const edge = x - 0.5;
+    let sum = this.#spread(sign, x - 0.5);
+    if (this.#seenSpeak) {
+      const edge = this.#seenValues.edge(sign, x);
+      const onSeen = Number.isNaN(edge) ? 0 : this.#spread(sign, edge);
+      sum += this.#seenShare * (onSeen - sum);
+    }
+    if (sign * this.#last >= x) sum += this.#weights[REPEAT]!;
+    if (this.#levelsSpeak) sum += this.#weights[LEVELS]! * this.#levels.tail(sign, x);
+    return sum;
+  }
+
+  /** Weighted probability that sign × error puts the value beyond `edge`, over the predictors with an error. */
+  #spread(sign: number, edge: number): number {
     let sum = 0;
     for (let i = 0; i < CENTRES; i++) {
       const distance = edge - sign * this.#centres[i]!;
@@ -131,8 +163,6 @@ export class Predictors {
       sum += this.#weights[e]! * upperTail(distance * this.#inverse[e]!);
       sum += this.#weights[e + 1]! * upperTail(distance * this.#inverse[e + 1]!);
     }
-    if (sign * this.#last >= x) sum += this.#weights[REPEAT]!;
-    if (this.#levelsSpeak) sum += this.#weights[LEVELS]! * this.#levels.tail(sign, x);
     return sum;
   }
 
@@ -140,6 +170,7 @@ export class Predictors {
   start(index: number): void {
     this.#seen++;
     this.#levels.learn(index, index);
+    this.#seenValues.add(index);
     this.#last = index;
   }
 
@@ -154,28 +185,52 @@ export class Predictors {
       this.#scales[i] = within(scale + rate * (MEAN_TO_SCALE * error - scale), LEAST_SCALE, MOST_SCALE);
     }
     this.#levels.learn(this.#last, index);
+    this.#seenValues.add(index);
     this.#repeated = index === this.#last ? 1 : 0;
     this.#last = index;
   }
 
-  /** Moves the weights; gives the share of `index` that the predictors with an error explain. */
+  /** Moves the weights; gives the share of `index` that plain errors explain, against values named exactly. */
   #learnWeights(index: number): number {
     const masses = this.#masses;
     const weights = this.#weights;
-    for (let i = 0; i < CONTINUOUS; i++) masses[i] = massOf(index, this.#centres[i >> 1]!, this.#inverse[i]!);
+    let plain = 0;
+    for (let i = 0; i < CONTINUOUS; i++) {
+      masses[i] = massBetween(index - 0.5, index + 0.5, this.#centres[i >> 1]!, this.#inverse[i]!);
+      plain += weights[i]! * masses[i]!;
+    }
     masses[REPEAT] = index === this.#last ? 1 : 0;
     masses[LEVELS] = this.#levelsKnow ? this.#levels.massOf(index) : 0;
+    const named = weights[REPEAT]! * masses[REPEAT] + weights[LEVELS]! * masses[LEVELS];
+    if (this.#seenValues.isReady) this.#learnSeen(index, plain);
     let total = 0;
     for (let i = 0; i < EXPERTS; i++) total += weights[i]! * masses[i]!;
     if (!(total > LEAST_TOTAL)) return 1;
     const rate = Math.max(WEIGHT_RATE, 1 / (++this.#learnt[this.#repeated]! + WEIGHT_PRIOR));
-    let erring = 0;
     for (let i = 0; i < EXPERTS; i++) {
       const explained = (weights[i]! * masses[i]!) / total;
-      if (i < CONTINUOUS) erring += explained;
       weights[i] = (weights[i]! + rate * (explained - weights[i]!)) * (1 - WEIGHT_SHARED) + WEIGHT_SHARED / EXPERTS;
     }
-    return erring;
+    return plain + named > LEAST_TOTAL ? plain / (plain + named) : 1;
+  }
+
+  /** Judges the seen values by what they gave this reading; where they speak, the masses become the mixture's. */
+  #learnSeen(index: number, plain: number): void {
+    const masses = this.#masses;
+    const share = this.#seenShare;
+    const seen = this.#seenValues;
+    const known = seen.find(index);
+    let onSeen = 0;
+    for (let i = 0; i < CONTINUOUS; i++) {
+      const mass = known ? massBetween(seen.low, seen.high, this.#centres[i >> 1]!, this.#inverse[i]!) : 0;
+      onSeen += this.#weights[i]! * mass;
+      if (this.#seenSpeak) masses[i]! += share * (mass - masses[i]!);
+    }
+    const both = plain + share * (onSeen - plain);
+    if (!(plain > LEAST_TOTAL && both > LEAST_TOTAL)) return;
+    this.#seenWorth += WORTH_RATE * (Math.min(onSeen / plain, MOST_WORTH) - this.#seenWorth);
+    const rate = Math.max(SEEN_RATE, 1 / (this.#seen + SEEN_PRIOR));
+    this.#seenShare = within(share + rate * ((share * onSeen) / both - share), LEAST_SEEN, MOST_SEEN);
   }
 
   #heaviest(): number {
@@ -185,10 +240,11 @@ export class Predictors {
   }
 }
 
-/** Probability of exactly `index`, taken on the tail's side so that it does not cancel. */
-function massOf(index: number, centre: number, inverse: number): number {
-  const distance = Math.abs(index - centre);
-  return upperTail((distance - 0.5) * inverse) - upperTail((distance + 0.5) * inverse);
+/** Probability of low..high, taken on the tail's side so that it does not cancel. */
+function massBetween(low: number, high: number, centre: number, inverse: number): number {
+  const from = (low - centre) * inverse;
+  const to = (high - centre) * inverse;
+  return from + to > 0 ? upperTail(from) - upperTail(to) : upperTail(-to) - upperTail(-from);
 }
 
 function within(value: number, least: number, most: number): number {
