@@ -161,7 +161,7 @@ export class Gateway {
 
   #connect(): Connection {
     const { broker, site, gateway } = this.#config;
-    const { firstRetryMs, clock } = this.#ports;
+    const { firstRetryMs } = this.#ports;
     return openConnection({
       url: broker.url,
       clientId: `stillwell-${site.site}-${gateway}`,
@@ -170,7 +170,7 @@ export class Gateway {
       password: broker.password,
       tls: broker.tls,
       sessionExpirySeconds: SESSION_EXPIRY_SECONDS,
-      will: Publisher.will(site.site, gateway, this.#topics.health, clock.wall()),
+      will: Publisher.will(this.#config, this.#ports, this.#topics.health),
       ...(firstRetryMs === undefined ? {} : { backOff: { firstMs: firstRetryMs } }),
       onMessage: (topic, payload) => this.#take(topic, payload),
       onState: (event) => this.#onConnection(event),

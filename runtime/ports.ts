@@ -12,4 +12,6 @@ export interface GatewayPorts {
   readonly stream?: Uint8Array;
   /** Largest first wait before reconnecting, ms; default as in the connection. */
   readonly firstRetryMs?: number;
+  /** How long an MQTT 5 broker waits before it publishes the will; default 10, so that a short cut is no loss. */
+  readonly willDelaySeconds?: number;
 }

@@ -22,8 +22,7 @@ const MOST_BACKLOG_BYTES = 1024 * 1024;
 /** Health said more often than this is joined. */
 const LEAST_BETWEEN_MS = 1000;
 const LAST_WORD_MS = 800;
-/** A short cut of the line is no loss; MQTT 5 brokers wait so long with the will. */
-const WILL_DELAY_SECONDS = 10;
+const DEFAULT_WILL_DELAY_SECONDS = 10;
 
 export class Publisher {
   reconnects = 0;
@@ -42,9 +41,11 @@ export class Publisher {
     this.#topics = topics;
   }
 
-  static will(site: string, gateway: string, topic: string, nowMs: number): Will {
-    const payload = willPayload(site, gateway, nowMs);
-    return { topic, payload, qos: 1, retain: true, contentType: JSON_TYPE, delaySeconds: WILL_DELAY_SECONDS };
+  /** What the broker publishes when the gateway vanishes. */
+  static will(config: GatewayConfig, ports: GatewayPorts, topic: string): Will {
+    const payload = willPayload(config.site.site, config.gateway, ports.clock.wall());
+    const delaySeconds = ports.willDelaySeconds ?? DEFAULT_WILL_DELAY_SECONDS;
+    return { topic, payload, qos: 1, retain: true, contentType: JSON_TYPE, delaySeconds };
   }
 
   /** State and forecasts of the tick that `serving` has folded in last. */
