@@ -9,6 +9,7 @@ import { deskCommand } from './commands/desk.ts';
 import { fitCommand } from './commands/fit.ts';
 import { hindcastCommand } from './commands/hindcast.ts';
 import { keysCommand } from './commands/keys.ts';
+import { refitCommand } from './commands/refit.ts';
 import { rollCommand } from './commands/roll.ts';
 import { sealCommand } from './commands/seal.ts';
 import { showCommand } from './commands/show.ts';
@@ -28,6 +29,7 @@ const commands: readonly (() => Command)[] = [
   rollCommand,
   watchCommand,
   deskCommand,
+  refitCommand,
 ];
 
 const program = new Command('stillwell')

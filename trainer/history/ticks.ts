@@ -75,7 +75,8 @@ function layChannel(
   return laid;
 }
 
-function digestOf(tickMs: number, firstTick: number, values: readonly Float64Array[]): Uint8Array {
+/** SHA-256 over tick, span and values of a series. */
+export function digestOf(tickMs: number, firstTick: number, values: readonly Float64Array[]): Uint8Array {
   const hash = createHash('sha256');
   hash.update(new Uint8Array(Float64Array.of(tickMs, firstTick, values.length, values[0]?.length ?? 0).buffer));
   for (const one of values) hash.update(new Uint8Array(one.buffer, one.byteOffset, one.byteLength));

@@ -1,0 +1,178 @@
+/** `stillwell refit`: a new candidate from what the desk collected. */
+import { join } from 'node:path';
+import { ADVISORY, type Site } from '@stillwell/protocol';
+import { Command, InvalidArgumentError } from 'commander';
+import { openBundleFile } from '../bundle-file.ts';
+import { fitSummary } from '../fit-summary.ts';
+import type { History } from '../history/history.ts';
+import { hindcastJson } from '../judge/hindcast-json.ts';
+import { several, wholeNumber } from '../option-values.ts';
+import { writeOutput } from '../output-file.ts';
+import { createProgress } from '../progress.ts';
+import type { RefitResult } from '../refit/refit.ts';
+import { readSite } from '../site-file.ts';
+import { shortNumber, textTable } from '../text-table.ts';
+import { timeOption } from '../time-option.ts';
+
+interface RefitCommandOptions {
+  readonly archive: string;
+  readonly site: string;
+  readonly history?: string[];
+  readonly previous?: string;
+  readonly out: string;
+  readonly timeZone?: string;
+  readonly from?: string;
+  readonly until?: string;
+  readonly learnShare?: number;
+  readonly calibrateShare?: number;
+  readonly maxBytes: number;
+  readonly useAll: boolean;
+  readonly seed: number;
+  readonly override?: string;
+  readonly json: boolean;
+}
+
+/** The command, to be joined to the program. */
+export function refitCommand(): Command {
+  return new Command('refit')
+    .description('Learns a new candidate from the archive of a desk, and says whether it beats the bundle that serves.')
+    .requiredOption('--archive <dir>', 'data folder of the desk')
+    .requiredOption('--site <file>', 'site file')
+    .requiredOption('--out <folder>', 'folder for candidate.swc, report.html, hindcast.json and survey.json')
+    .option('--history <files...>', 'files of the first fit as well; the archive wins where both cover a tick', several)
+    .option('--previous <bundle>', 'bundle that serves: compared with, and named in the new one as its predecessor')
+    .option('--time-zone <zone>', "zone of history times that carry none; the site's otherwise")
+    .option('--from <time>', 'leave out readings before this time')
+    .option('--until <time>', 'leave out readings from this time on')
+    .option('--learn-share <share>', 'share to learn from; by default the newest readings calibrate and judge', share)
+    .option('--calibrate-share <share>', 'share after it for penalties and bounds', share)
+    .option('--max-bytes <bytes>', 'largest bundle document', wholeNumber(2048, 65_536), 24 * 1024)
+    .option('--no-use-all', 'ship the model as judged instead of learning once more from everything')
+    .option('--seed <number>', 'seed of everything drawn', wholeNumber(0, 2 ** 32 - 1), 1)
+    .option('--override <reason>', 'why it may be sealed though it shows no skill; stands in the bundle')
+    .option('--json', 'the result as JSON', false)
+    .addHelpText(
+      'after',
+      '\nExample:\n  stillwell refit --archive desk-data --site site.yaml --history logs/2025.csv --previous pump-7.swb --out refit',
+    )
+    .action(run);
+}
+
+async function run(options: RefitCommandOptions): Promise<void> {
+  const site = readSite(options.site);
+  const previous = options.previous === undefined ? null : openBundleFile(options.previous);
+  const fromMs = timeOption('--from', options.from, site.timeZone);
+  const untilMs = timeOption('--until', options.until, site.timeZone);
+  const [{ readArchive }, { refit }] = await Promise.all([import('../desk/archive.ts'), import('../refit/refit.ts')]);
+  const archive = await readArchive(options.archive, site.site);
+  const files = await readFiles(site, options, fromMs, untilMs);
+  const progress = createProgress('refitting', 'steps');
+  let steps = 0;
+  const result = await refit(
+    {
+      archive,
+      files,
+      site,
+      previous,
+      ...(fromMs === undefined ? {} : { fromTick: Math.ceil(fromMs / site.tickMs) }),
+      ...(untilMs === undefined ? {} : { toTick: Math.ceil(untilMs / site.tickMs) }),
+    },
+    {
+      seed: options.seed,
+      learnShare: options.learnShare ?? null,
+      calibrateShare: options.calibrateShare ?? null,
+      maxBytes: options.maxBytes,
+      coverage: previous?.bundle.bounds.coverage ?? 0.9,
+      useAll: options.useAll,
+      override: options.override ?? null,
+      progress: () => progress.update(++steps, null),
+    },
+  );
+  progress.end();
+  await write(options.out, site, result);
+  process.stdout.write(
+    options.json ? `${JSON.stringify(resultJson(options.out, result), null, 2)}\n` : text(options.out, result),
+  );
+}
+
+async function readFiles(
+  site: Site,
+  options: RefitCommandOptions,
+  fromMs: number | undefined,
+  untilMs: number | undefined,
+): Promise<History | null> {
+  if (options.history === undefined) return null;
+  const { readHistory } = await import('../history/read.ts');
+  const progress = createProgress('reading');
+  try {
+    return await readHistory(options.history, site, {
+      zone: options.timeZone ?? null,
+      ...(fromMs === undefined ? {} : { fromMs }),
+      ...(untilMs === undefined ? {} : { untilMs }),
+      progress,
+    });
+  } finally {
+    progress.end();
+  }
+}
+
+/** Everything is made before anything is written. */
+async function write(folder: string, site: Site, { absorbed, fit }: RefitResult): Promise<void> {
+  const { fitReport } = await import('../report/page.ts');
+  const survey = `${JSON.stringify(absorbed.survey, null, 2)}\n`;
+  const hindcast = `${JSON.stringify(hindcastJson(fit.hindcast), null, 2)}\n`;
+  const report = fitReport({ site, survey: absorbed.survey, result: fit });
+  writeOutput(join(folder, 'survey.json'), survey);
+  writeOutput(join(folder, 'hindcast.json'), hindcast);
+  writeOutput(join(folder, 'report.html'), report);
+  writeOutput(join(folder, 'candidate.swc'), fit.document);
+}
+
+function resultJson(folder: string, { fit, comparison, absorbed }: RefitResult): Record<string, unknown> {
+  const { series, newFromTick } = absorbed;
+  return {
+    candidate: join(folder, 'candidate.swc'),
+    bytes: fit.document.length,
+    ticks: series.ticks,
+    new_ticks: series.firstTick + series.ticks - newFromTick,
+    has_skill: fit.verdicts.hasSkill,
+    mean_skill: fit.verdicts.meanSkill,
+    verdict: fit.verdicts.sentence,
+    signals: fit.verdicts.signals,
+    comparison,
+    audit: fit.audit,
+    chosen: fit.chosen,
+    warnings: fit.warnings,
+    timings_ms: fit.timings,
+    advisory: ADVISORY,
+  };
+}
+
+function text(folder: string, { fit, comparison }: RefitResult): string {
+  const beside =
+    comparison === null
+      ? 'No previous bundle given (--previous), so nothing to compare with.'
+      : [
+          textTable(
+            ['signal', 'mse new / previous', 'coverage', 'previous coverage'],
+            comparison.signals.map((one) => [
+              one.signal,
+              shortNumber(one.ratio, 3),
+              shortNumber(one.coverage, 3),
+              shortNumber(one.previousCoverage, 3),
+            ]),
+            [1, 2, 3],
+          ),
+          comparison.sentence,
+        ].join('\n');
+  return (
+    `${fitSummary(fit)}\n${beside}\n\nWritten to ${folder}: candidate.swc, report.html, hindcast.json, survey.json\n\n` +
+    `${ADVISORY}\n`
+  );
+}
+
+function share(text: string): number {
+  const value = Number(text);
+  if (!(value > 0 && value < 1)) throw new InvalidArgumentError('Expected a share between 0 and 1.');
+  return value;
+}

@@ -1,0 +1,100 @@
+/**
+ * A new model beside the one it would replace, on the same readings that neither should have learned from. The new one is
+ * scored as judged, before it learned once more from everything.
+ */
+import type { OpenDocument } from '../bundle-file.ts';
+import type { Series } from '../history/series.ts';
+import { type Hindcast, hindcast } from '../judge/hindcast.ts';
+import { meanOf } from '../judge/scores.ts';
+import type { FitResult } from '../pipeline.ts';
+
+/** Ratios of mean squared error, new over previous; below 1 the new one is better. */
+export interface Comparison {
+  readonly fromMs: number;
+  readonly toMs: number;
+  readonly origins: number;
+  /** Mean over signals of their ratios (geometric), every step. */
+  readonly ratio: number;
+  readonly signals: readonly {
+    readonly signal: string;
+    readonly ratio: number;
+    readonly coverage: number;
+    readonly previousCoverage: number;
+  }[];
+  /** Share of the judged time that the previous bundle had already learned or been calibrated from: it flatters that one. */
+  readonly seenByPrevious: number;
+  readonly isRecommended: boolean;
+  readonly sentence: string;
+}
+
+/** Within so much of each other two models count as equal, and the serving one stays. */
+const EQUAL_BAND = 0.01;
+/** A signal that gets worse by more than this is named, and the change not recommended. */
+const MUCH_WORSE = 1.1;
+
+/**
+ * Scores both on the judged span of the new fit.
+ *
+ * shapes  the previous bundle has the same channels as the series
+ */
+export function compare(result: FitResult, previous: OpenDocument, series: Series): Comparison {
+  const units = previous.bundle.channels.map((channel) => channel.unit);
+  const old = hindcast(previous.model, series, { ...result.judged, learn: null }, units);
+  const fresh = result.hindcast;
+  const signals = fresh.signals.map((signal, i) => ({
+    signal,
+    ratio: ratioOf(fresh, old, i),
+    coverage: meanCoverage(fresh, i),
+    previousCoverage: meanCoverage(old, i),
+  }));
+  const known = signals.map((one) => one.ratio).filter((ratio) => Number.isFinite(ratio) && ratio > 0);
+  const ratio = Math.exp(meanOf(Float64Array.from(known, Math.log)));
+  const seenByPrevious = shareSeen(result, previous, series.tickMs);
+  const isRecommended = ratio < 1 - EQUAL_BAND && known.every((one) => one < MUCH_WORSE) && result.verdicts.hasSkill;
+  const facts = { ratio, signals, seenByPrevious, isRecommended };
+  return {
+    fromMs: fresh.fromMs,
+    toMs: fresh.toMs,
+    origins: fresh.origins,
+    ...facts,
+    sentence: sentenceOf(facts, result.verdicts.hasSkill),
+  };
+}
+
+/** Both horizons may differ; the steps that both forecast are compared. */
+function ratioOf(fresh: Hindcast, old: Hindcast, signal: number): number {
+  const steps = Math.min(fresh.horizon, old.horizon);
+  const mean = (cast: Hindcast): number =>
+    meanOf(cast.mse.subarray(signal * cast.horizon, signal * cast.horizon + steps));
+  return mean(fresh) / mean(old);
+}
+
+function meanCoverage(cast: Hindcast, signal: number): number {
+  return meanOf(cast.coverage.subarray(signal * cast.horizon, (signal + 1) * cast.horizon));
+}
+
+function shareSeen(result: FitResult, previous: OpenDocument, tickMs: number): number {
+  const { fromTick, toTick } = result.judged;
+  const seenTo = Math.round(previous.bundle.provenance.lastMs / tickMs) + 1;
+  return Math.max(0, Math.min(1, (seenTo - fromTick) / (toTick - fromTick)));
+}
+
+function sentenceOf(
+  facts: Pick<Comparison, 'ratio' | 'signals' | 'seenByPrevious' | 'isRecommended'>,
+  hasSkill: boolean,
+): string {
+  const change = `${Math.abs((1 - facts.ratio) * 100).toFixed(1)} % ${facts.ratio < 1 ? 'below' : 'above'}`;
+  const seen =
+    facts.seenByPrevious > 0
+      ? ` The previous bundle had seen ${Math.round(facts.seenByPrevious * 100)} % of that time before, which flatters it.`
+      : '';
+  const told = `On the judged time the new model's mean squared error is ${change} that of the previous bundle.${seen}`;
+  if (facts.isRecommended) return `${told} Recommended: seal it and roll it out.`;
+  const worse = facts.signals.filter((one) => one.ratio >= MUCH_WORSE).map((one) => one.signal);
+  const why = !hasSkill
+    ? 'it shows no skill over the obvious guesses'
+    : worse.length > 0
+      ? `it forecasts ${worse.join(', ')} worse`
+      : 'the gain is too small to change a working bundle for';
+  return `${told} Not recommended: ${why}.`;
+}
