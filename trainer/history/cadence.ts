@@ -3,6 +3,7 @@
  */
 import { counted, type Finding, lengthOf } from './finding.ts';
 import type { ChannelReadings } from './history.ts';
+import { quantiles } from './order-statistics.ts';
 
 const SECOND = 1000;
 const MINUTE = 60 * SECOND;
@@ -37,11 +38,10 @@ export function cadenceOf(channel: ChannelReadings, order: Uint32Array | null): 
     if (time > previous) intervals[count++] = time - previous;
     previous = time;
   }
-  const sorted = intervals.subarray(0, count).sort();
-  if (count === 0) return { intervalMs: Number.NaN, jitterMs: Number.NaN };
-  const intervalMs = sorted[count >> 1] as number;
-  const away = sorted.map((interval) => Math.abs(interval - intervalMs)).sort();
-  return { intervalMs, jitterMs: away[count >> 1] as number };
+  const found = intervals.subarray(0, count);
+  const intervalMs = quantiles(found, [0.5])[0] as number;
+  for (let n = 0; n < count; n++) found[n] = Math.abs((found[n] as number) - intervalMs);
+  return { intervalMs, jitterMs: quantiles(found, [0.5])[0] as number };
 }
 
 /** Tick for signals read at these usual intervals: the smallest step no signal is slower than. */

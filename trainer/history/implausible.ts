@@ -4,6 +4,7 @@
 import type { Signal } from '@stillwell/protocol';
 import { counted, type Finding, figure, iso } from './finding.ts';
 import type { ChannelReadings } from './history.ts';
+import { quantiles } from './order-statistics.ts';
 import { plausibleSpan } from './plausible.ts';
 import type { Series } from './series.ts';
 
@@ -54,10 +55,9 @@ export function outsideFindings(signal: Signal, channel: ChannelReadings): Findi
 /** Single ticks that jump far away and back. */
 export function spikeFindings(series: Series, c: number): Finding[] {
   const values = series.values[c] as Float64Array;
-  const steps = values.map((value, n) => (n === 0 ? Number.NaN : Math.abs(value - (values[n - 1] as number))));
-  const sorted = steps.filter((step) => !Number.isNaN(step)).sort();
-  if (sorted.length < FEWEST) return [];
-  const usual = sorted[Math.floor(0.999 * (sorted.length - 1))] as number;
+  const steps = new Float64Array(Math.max(0, values.length - 1));
+  for (let n = 0; n < steps.length; n++) steps[n] = Math.abs((values[n + 1] as number) - (values[n] as number));
+  const usual = steps.length < FEWEST ? Number.NaN : (quantiles(steps, [0.999])[0] as number);
   if (!(usual > 0)) return [];
   const at: number[] = [];
   for (let n = 1; n + 1 < values.length; n++) {

@@ -3,9 +3,10 @@
  * the usual spread of the signal. A single 1e12 from a broken converter would otherwise decide every scale.
  */
 import type { Signal } from '@stillwell/protocol';
+import { quantiles } from './order-statistics.ts';
 
 const FEWEST = 100;
-const USUAL = [0.005, 0.995] as const;
+const USUAL = [0.005, 0.995];
 const TIMES_SPREAD = 100;
 const TIMES_LEVEL = 1e6;
 
@@ -21,10 +22,9 @@ const ALL: Plausible = { low: Number.NEGATIVE_INFINITY, high: Number.POSITIVE_IN
 /** Bounds for a signal's readings; NaN among them is passed over. */
 export function plausibleSpan(signal: Signal, values: Float64Array): Plausible {
   if (signal.range !== null) return { low: signal.range[0], high: signal.range[1], isDeclared: true };
-  const sorted = values.filter((value) => !Number.isNaN(value)).sort();
-  if (sorted.length < FEWEST) return ALL;
-  const low = sorted[Math.floor(USUAL[0] * (sorted.length - 1))] as number;
-  const high = sorted[Math.ceil(USUAL[1] * (sorted.length - 1))] as number;
+  if (values.length < FEWEST) return ALL;
+  const [low, high] = quantiles(values, USUAL) as [number, number];
+  if (Number.isNaN(low)) return ALL;
   const margin = high > low ? TIMES_SPREAD * (high - low) : TIMES_LEVEL * Math.max(1, Math.abs(low));
   return { low: low - margin, high: high + margin, isDeclared: false };
 }

@@ -9,6 +9,7 @@
 import { latticeIndex, latticeValue, type Signal, type Site } from '@stillwell/protocol';
 import { channelsOf } from './channels.ts';
 import type { History } from './history.ts';
+import { quantiles } from './order-statistics.ts';
 
 export interface Lattice {
   readonly step: number;
@@ -99,15 +100,20 @@ function multiplesOf(values: Float64Array, decimals: number): Lattice | null {
 
 /** A power of ten well below the values' own movement, for values without a sensor's lattice. */
 function computedStep(values: Float64Array): number {
-  const sorted = values.filter((value) => !Number.isNaN(value)).sort();
-  const at = (share: number): number => sorted[Math.floor(share * (sorted.length - 1))] as number;
-  const spread = at(0.99) - at(0.01) || at(1) - at(0) || Math.abs(at(0.5)) || 1;
-  const moves: number[] = [];
-  for (let i = 1; i < values.length; i++) {
-    const move = Math.abs((values[i] as number) - (values[i - 1] as number));
-    if (move > 0) moves.push(move);
-  }
-  const movement = Float64Array.from(moves).sort()[moves.length >> 1] ?? spread;
+  const [least, low, middle, high, greatest] = quantiles(values, [0, 0.01, 0.5, 0.99, 1]) as [
+    number,
+    number,
+    number,
+    number,
+    number,
+  ];
+  const spread = high - low || greatest - least || Math.abs(middle) || 1;
+  const moves = new Float64Array(values.length);
+  for (let i = 1; i < values.length; i++)
+    moves[i] = Math.abs((values[i] as number) - (values[i - 1] as number)) || Number.NaN;
+  moves[0] = Number.NaN;
+  const usual = quantiles(moves, [0.5])[0] as number;
+  const movement = Number.isNaN(usual) ? spread : usual;
   return 10 ** Math.floor(Math.log10(Math.max(spread / 1e6, Math.min(spread / 1e4, movement / 8))));
 }
 

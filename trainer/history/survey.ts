@@ -16,14 +16,14 @@ import { outsideFindings, spikeFindings } from './implausible.ts';
 import { latticeFindings } from './lattice-findings.ts';
 import { type FoundLattice, findLattices } from './resolution.ts';
 import type { Series } from './series.ts';
-import { commonest, stuckFindings } from './stuck.ts';
+import { NEAR_CONSTANT, stuckFindings } from './stuck.ts';
 import { timeOrder } from './ticks.ts';
 import { timeOrderFindings } from './time-order.ts';
+import { seeValues, type ValuesSeen } from './values-seen.ts';
 
 const FORMAT = 1;
 /** Parts of the history that the presence of a signal is told for. */
 const PRESENCE_BINS = 48;
-const NEAR_CONSTANT = 0.995;
 
 /** Figures of one signal or input. */
 export interface SurveyedSignal {
@@ -84,22 +84,21 @@ function figuresOf(
   laid: Float64Array,
   cadence: { intervalMs: number; jitterMs: number },
   lattice: FoundLattice,
+  seen: ValuesSeen,
 ): SurveyedSignal {
-  const sorted = laid.filter((value) => !Number.isNaN(value)).sort();
-  const share = commonest(laid).share;
   return {
     name: signal.name,
     role,
     unit: signal.unit,
     readings: channel.values.reduce((sum, value) => sum + (Number.isNaN(value) ? 0 : 1), 0),
-    missingShare: Number((1 - sorted.length / laid.length).toFixed(6)),
+    missingShare: Number((1 - seen.readings / laid.length).toFixed(6)),
     intervalS: secondsOrNull(cadence.intervalMs),
     jitterS: secondsOrNull(cadence.jitterMs),
     lattice,
-    least: sorted[0] ?? null,
-    median: sorted[sorted.length >> 1] ?? null,
-    greatest: sorted.at(-1) ?? null,
-    isStill: !(share < NEAR_CONSTANT),
+    least: seen.least,
+    median: seen.median,
+    greatest: seen.greatest,
+    isStill: !(seen.commonestShare < NEAR_CONSTANT),
     presence: presenceOf(laid, PRESENCE_BINS),
   };
 }
@@ -131,6 +130,7 @@ export function surveyHistory(
   for (const times of orders.keys()) orders.set(times, timeOrder(times));
   const channels = channelsOf(site);
   const cadences = history.channels.map((channel) => cadenceOf(channel, orders.get(channel.times) ?? null));
+  const seen = series.values.map(seeValues);
   const signals = channels.map((signal, c) =>
     figuresOf(
       signal,
@@ -139,6 +139,7 @@ export function surveyHistory(
       series.values[c] as Float64Array,
       cadences[c] as { intervalMs: number; jitterMs: number },
       lattices[c] as FoundLattice,
+      seen[c] as ValuesSeen,
     ),
   );
   const findings = [
@@ -146,7 +147,7 @@ export function surveyHistory(
     ...orderFindings(history, orders),
     ...gapFindings(series),
     ...channels.flatMap((signal, c) => [
-      ...stuckFindings(series, c),
+      ...stuckFindings(series, c, seen[c] as ValuesSeen),
       ...outsideFindings(signal, history.channels[c] as ChannelReadings),
       ...spikeFindings(series, c),
       ...latticeFindings(signal, history.channels[c] as ChannelReadings, lattices[c] as FoundLattice),
