@@ -12,19 +12,20 @@ export const HEALTH_STATUSES = ['starting', 'no-bundle', 'warming', 'running', '
 export type HealthStatus = (typeof HEALTH_STATUSES)[number];
 
 const count = z.int().min(0);
+const countsByCause = z.record(z.string().min(1), count);
 
-/** Counts since the gateway started; further counts may stand beside the named ones. */
+/** Counts since the gateway started; further counts, plain or by cause, may stand beside the named ones. */
 export const countersSchema = z
   .object({
     readings: count,
-    refused: z.record(z.string().min(1), count),
+    refused: countsByCause,
     late: count,
     ticks: count,
     segments_open: count,
     segments_waiting: count,
     segments_confirmed: count,
   })
-  .catchall(count);
+  .catchall(z.union([count, countsByCause]));
 
 /** The last attempt to change the serving bundle. */
 export const lastChangeSchema = z.strictObject({
