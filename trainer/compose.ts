@@ -42,6 +42,8 @@ const PROBE_TICKS = 96;
 const WORSE_RATIO = 1.05;
 /** Trial and probation watch this many horizons. */
 const GATE_HORIZONS = 4;
+/** Characters of a verdict beside the signal's name, at most. */
+const LONGEST_VERDICT = 150;
 const EMPTY_DIGEST = new Uint8Array(32);
 
 /**
@@ -180,7 +182,7 @@ export function placeholderJudge(
     mse: zeros(names.length),
     skill: zeros(names.length * rivals),
     coverage: zeros(names.length),
-    verdicts: names.map((name) => name + 'x'.repeat(190)),
+    verdicts: names.map((name) => name + 'x'.repeat(LONGEST_VERDICT)),
     hasSkill: true,
     override,
   };

@@ -11,7 +11,7 @@ export interface FitOptions {
   readonly learnShare: number;
   /** Share right after it that chooses penalties and sets the bounds; what remains judges. */
   readonly calibrateShare: number;
-  /** Largest bundle document in bytes. */
+  /** Largest bundle in bytes, sealed with as many signatures as an envelope holds. */
   readonly maxBytes: number;
   /** Nominal coverage of the bounds, in (0, 1). */
   readonly coverage: number;

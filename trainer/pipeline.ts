@@ -2,7 +2,7 @@
  * From a history to a candidate bundle, the steps in order: split by time, clean, learn, shrink, round, calibrate, judge.
  * The same series, site, options and seed give the same bytes; nothing here reads a clock into the document.
  */
-import { type Bundle, decodeBundle, encodeBundle } from '@stillwell/protocol';
+import { type Bundle, decodeBundle, encodeBundle, MAX_SIGNATURES } from '@stillwell/protocol';
 import { type LinearModel, modelFromBundle } from '@stillwell/runtime/filter';
 import { type Composition, composeBundle, judgeTable, placeholderJudge } from './compose.ts';
 import { TrainError } from './errors.ts';
@@ -20,7 +20,7 @@ import { type Hindcast, hindcast } from './judge/hindcast.ts';
 import { meanOf } from './judge/scores.ts';
 import { type Audit, checkAtRest, replayError } from './quantise/audit.ts';
 import { floatModel, openCalibration, type Surroundings } from './quantise/float-model.ts';
-import { floatFactors, roundedFactors } from './quantise/quantise.ts';
+import { type Factors, floatFactors, roundedFactors } from './quantise/quantise.ts';
 import { checkOptions, type Split, splitHistory } from './requirements.ts';
 import type { TickSpan } from './span.ts';
 
@@ -62,7 +62,9 @@ export interface FitResult {
 }
 
 /** Rounds of trying a smaller size until the document fits. */
-const MOST_ROUNDS = 8;
+const MOST_ROUNDS = 4;
+/** What sealing adds at most: the envelope's head and four signatures. */
+const SIGNED_BYTES = 56 + MAX_SIGNATURES * 72;
 /** Step of the gateway's quantile tracker; measured to hold weekly coverage on real records. */
 const BOUNDS_RATE = 0.05;
 /** Rivals a hindcast has at most; their names and skills take bytes. */
@@ -123,30 +125,35 @@ function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Pr
     coverage: options.coverage,
     boundsRate: BOUNDS_RATE,
   };
-  const horizons = verdictSteps(around.horizon);
+  const open = openCalibration(around.scalings.length, around.signalCount * around.horizon);
   const names = input.series.names.slice(0, around.signalCount);
-  let tensorBytes = options.maxBytes;
-  for (let round = 0; round < MOST_ROUNDS; round++) {
-    const size = chooseSize(learned, calibrationMoments, tensorBytes);
+  const draft = (size: Size): Draft => {
     const { factors, tensors } = roundedFactors(learned, size.order, size.basisCount);
+    const judge = placeholderJudge(names, verdictSteps(around.horizon), MOST_RIVALS, options.override);
+    const settled = settledOf(split, choice, size);
     const parts = {
       input,
       options,
       around,
       tensors,
-      calibration: openCalibration(around.scalings.length, around.signalCount * around.horizon),
-      judge: placeholderJudge(names, horizons, MOST_RIVALS, options.override),
+      calibration: open,
+      judge,
       learnedToTick: split.learn.toTick,
-      settled: settledOf(split, choice, size),
+      settled,
     };
-    const over = encodeBundle(composeBundle(parts)).length - options.maxBytes;
-    if (over > 0) {
-      tensorBytes = Math.min(tensorBytes, sizeBytes(size, learned)) - over;
+    return { size, factors, parts, bytes: encodeBundle(composeBundle(parts)).length };
+  };
+  const limit = options.maxBytes - SIGNED_BYTES;
+  const least = { order: 1, basisCount: 1 };
+  let tensorBytes = limit - (draft(least).bytes - sizeBytes(least, learned));
+  for (let round = 0; round < MOST_ROUNDS; round++) {
+    const { size, factors, parts, bytes } = draft(chooseSize(learned, calibrationMoments, tensorBytes));
+    if (bytes > limit) {
+      tensorBytes -= bytes - limit;
       continue;
     }
     const span = indices(split.calibrate, input.series);
-    const open = floatModel(factors, around, parts.calibration);
-    const calibration = calibrate(open, input.series, span, options.coverage);
+    const calibration = calibrate(floatModel(factors, around, open), input.series, span, options.coverage);
     const bundle = composeBundle({ ...parts, calibration });
     const float = floatModel(floatFactors(learned, size.order, size.basisCount), around, calibration);
     return { size, bundle, parts: { ...parts, calibration }, float };
@@ -156,6 +163,14 @@ function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Pr
     `--max-bytes: expected room for at least one state, got ${options.maxBytes} bytes for ${names.length} signals and a horizon ` +
       `of ${around.horizon} ticks. Raise the limit, or shorten the horizon.`,
   );
+}
+
+/** A document of some size before calibration, to see how long it is. */
+interface Draft {
+  readonly size: Size;
+  readonly factors: Factors;
+  readonly parts: Composition;
+  readonly bytes: number;
 }
 
 function auditRounding(small: Small, cast: Hindcast, series: Series, split: Split): Audit {

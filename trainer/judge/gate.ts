@@ -104,12 +104,10 @@ function judgeSignal(hindcast: Hindcast, i: number, horizons: readonly number[])
 function signalSentence(verdict: Omit<Verdict, 'sentence'>, horizon: number, nominal: number): string {
   const { signal, skill, bestRival, coverage } = verdict;
   if (Number.isNaN(skill)) return `${signal}: no readings in the judged part, so nothing is known of its skill.`;
-  const bounds = `${percent(coverage)} of readings fell inside the ${percent(nominal)} bounds`;
   const over = horizon === 1 ? 'one step ahead' : `over ${horizon} steps`;
-  if (skill > 0) {
-    return `${signal}: ${over} the mean squared error is ${percent(skill)} below that of ${bestRival}, the best obvious guess; ${bounds}.`;
-  }
-  return `${signal}: no better than ${bestRival} ${over} (mean squared error ${percent(-skill)} above it); do not rely on its forecast; ${bounds}.`;
+  const bounds = `${percent(coverage)} of readings inside the ${percent(nominal)} bounds`;
+  if (skill > 0) return `${signal}: squared error ${percent(skill)} below ${bestRival} ${over}; ${bounds}.`;
+  return `${signal}: no better than ${bestRival} ${over} (squared error ${percent(-skill)} above); do not rely on it; ${bounds}.`;
 }
 
 function wholeSentence(signals: number, better: number, meanSkill: number): string {

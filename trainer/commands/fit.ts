@@ -1,0 +1,132 @@
+/** `stillwell fit`: from a history to a judged candidate. */
+import { join } from 'node:path';
+import { ADVISORY, type Site } from '@stillwell/protocol';
+import { Command, InvalidArgumentError } from 'commander';
+import { fitSummary } from '../fit-summary.ts';
+import { type LoadedHistory, loadHistory } from '../history/load.ts';
+import { hindcastJson } from '../judge/hindcast-json.ts';
+import { several, wholeNumber } from '../option-values.ts';
+import { writeOutput } from '../output-file.ts';
+import { FIT_DEFAULTS, type FitResult, fit } from '../pipeline.ts';
+import { createProgress } from '../progress.ts';
+import { fitReport } from '../report/page.ts';
+import { readSite } from '../site-file.ts';
+import { timeOption } from '../time-option.ts';
+
+interface FitCommandOptions {
+  readonly site: string;
+  readonly history: string[];
+  readonly out: string;
+  readonly timeZone?: string;
+  readonly from?: string;
+  readonly until?: string;
+  readonly learnShare: number;
+  readonly calibrateShare: number;
+  readonly maxBytes: number;
+  readonly useAll: boolean;
+  readonly seed: number;
+  readonly override?: string;
+  readonly json: boolean;
+}
+
+/** The command, to be joined to the program. */
+export function fitCommand(): Command {
+  return new Command('fit')
+    .description('Learns a model of a site from its history and judges it on the part it never saw.')
+    .requiredOption('--site <file>', 'site file')
+    .requiredOption('--history <files...>', 'CSV or NDJSON files, also gzipped', several)
+    .requiredOption('--out <folder>', 'folder for candidate.swc, report.html, hindcast.json and survey.json')
+    .option('--time-zone <zone>', "zone of history times that carry none; the site's otherwise")
+    .option('--from <time>', 'leave out readings before this time')
+    .option('--until <time>', 'leave out readings from this time on')
+    .option('--learn-share <share>', 'share of the history to learn from', share, FIT_DEFAULTS.learnShare)
+    .option('--calibrate-share <share>', 'share after it for penalties and bounds', share, FIT_DEFAULTS.calibrateShare)
+    .option('--max-bytes <bytes>', 'largest bundle document', wholeNumber(2048, 65_536), FIT_DEFAULTS.maxBytes)
+    .option('--use-all', 'after judging, learn once more from the whole history', false)
+    .option('--seed <number>', 'seed of everything drawn', wholeNumber(0, 2 ** 32 - 1), FIT_DEFAULTS.seed)
+    .option('--override <reason>', 'why it may be sealed though it shows no skill; stands in the bundle')
+    .option('--json', 'the result as JSON', false)
+    .addHelpText(
+      'after',
+      '\nExample:\n  stillwell fit --site site.yaml --history logs/2023.csv logs/2024.csv --out fits/north-well',
+    )
+    .action(run);
+}
+
+async function run(options: FitCommandOptions): Promise<void> {
+  const site = readSite(options.site);
+  const loaded = await load(site, options);
+  const label = createProgress('fitting', 'steps');
+  let steps = 0;
+  const result = await fit(
+    { series: loaded.series, site, survey: loaded.survey, lattices: loaded.lattices },
+    {
+      seed: options.seed,
+      learnShare: options.learnShare,
+      calibrateShare: options.calibrateShare,
+      maxBytes: options.maxBytes,
+      coverage: FIT_DEFAULTS.coverage,
+      useAll: options.useAll,
+      override: options.override ?? null,
+      progress: () => label.update(++steps, null),
+    },
+  );
+  label.end();
+  writeResults(options.out, site, loaded, result);
+  process.stdout.write(
+    options.json ? `${JSON.stringify(resultJson(options.out, result), null, 2)}\n` : text(options.out, result),
+  );
+}
+
+async function load(site: Site, options: FitCommandOptions): Promise<LoadedHistory> {
+  const progress = createProgress('reading');
+  const fromMs = timeOption('--from', options.from, site.timeZone);
+  const untilMs = timeOption('--until', options.until, site.timeZone);
+  try {
+    return await loadHistory(options.history, site, {
+      zone: options.timeZone ?? null,
+      ...(fromMs === undefined ? {} : { fromMs }),
+      ...(untilMs === undefined ? {} : { untilMs }),
+      progress,
+    });
+  } finally {
+    progress.end();
+  }
+}
+
+/** Everything is made before anything is written. */
+function writeResults(folder: string, site: Site, loaded: LoadedHistory, result: FitResult): void {
+  const survey = `${JSON.stringify(loaded.survey, null, 2)}\n`;
+  const hindcast = `${JSON.stringify(hindcastJson(result.hindcast), null, 2)}\n`;
+  const report = fitReport({ site, survey: loaded.survey, result });
+  writeOutput(join(folder, 'survey.json'), survey);
+  writeOutput(join(folder, 'hindcast.json'), hindcast);
+  writeOutput(join(folder, 'report.html'), report);
+  writeOutput(join(folder, 'candidate.swc'), result.document);
+}
+
+function resultJson(folder: string, result: FitResult): Record<string, unknown> {
+  return {
+    candidate: join(folder, 'candidate.swc'),
+    bytes: result.document.length,
+    has_skill: result.verdicts.hasSkill,
+    mean_skill: result.verdicts.meanSkill,
+    verdict: result.verdicts.sentence,
+    signals: result.verdicts.signals,
+    audit: result.audit,
+    chosen: result.chosen,
+    warnings: result.warnings,
+    timings_ms: result.timings,
+    advisory: ADVISORY,
+  };
+}
+
+function text(folder: string, result: FitResult): string {
+  return `${fitSummary(result)}\nWritten to ${folder}: candidate.swc, report.html, hindcast.json, survey.json\n\n${ADVISORY}\n`;
+}
+
+function share(text: string): number {
+  const value = Number(text);
+  if (!(value > 0 && value < 1)) throw new InvalidArgumentError('Expected a share between 0 and 1.');
+  return value;
+}

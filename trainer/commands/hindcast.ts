@@ -1,0 +1,160 @@
+/** `stillwell hindcast`: what a bundle would have forecast over a history, scored beside the rivals. */
+import type { Bundle } from '@stillwell/protocol';
+import { ADVISORY, describeSchemaDifference } from '@stillwell/protocol';
+import { Command } from 'commander';
+import { openBundleFile } from '../bundle-file.ts';
+import { TrainError } from '../errors.ts';
+import { loadHistory } from '../history/load.ts';
+import type { Series } from '../history/series.ts';
+import { verdictSteps } from '../judge/gate.ts';
+import { type Hindcast, hindcast } from '../judge/hindcast.ts';
+import { hindcastJson } from '../judge/hindcast-json.ts';
+import { meanOf, skillScore } from '../judge/scores.ts';
+import { several } from '../option-values.ts';
+import { createProgress } from '../progress.ts';
+import { readSite } from '../site-file.ts';
+import type { TickSpan } from '../span.ts';
+import { shortNumber, textTable } from '../text-table.ts';
+import { timeOption } from '../time-option.ts';
+
+interface HindcastOptions {
+  readonly bundle: string;
+  readonly site: string;
+  readonly history: string[];
+  readonly timeZone?: string;
+  readonly from?: string;
+  readonly until?: string;
+  readonly json: boolean;
+}
+
+/** The command, to be joined to the program. */
+export function hindcastCommand(): Command {
+  return new Command('hindcast')
+    .description('Replays a bundle over a history tick by tick and scores its forecasts beside the obvious guesses.')
+    .requiredOption('--bundle <file>', 'sealed bundle (.swb) or candidate (.swc)')
+    .requiredOption('--site <file>', 'site file')
+    .requiredOption('--history <files...>', 'CSV or NDJSON files, also gzipped', several)
+    .option('--time-zone <zone>', "zone of history times that carry none; the site's otherwise")
+    .option(
+      '--from <time>',
+      'first reading judged; by default the first that the bundle neither learned nor was calibrated from',
+    )
+    .option('--until <time>', 'first reading no longer judged; by default the end of the history')
+    .option('--json', 'every signal and step as JSON', false)
+    .addHelpText(
+      'after',
+      '\nExample:\n  stillwell hindcast --bundle north-well.swb --site site.yaml --history logs/*.csv --from 2026-01-01 --json',
+    )
+    .action(run);
+}
+
+async function run(options: HindcastOptions): Promise<void> {
+  const site = readSite(options.site);
+  const { bundle, model, digest } = openBundleFile(options.bundle);
+  const difference = describeSchemaDifference(bundle, site);
+  if (difference !== null) {
+    throw new TrainError(
+      'bundle',
+      `${options.bundle} was made for other readings than ${options.site} declares: ${difference}`,
+    );
+  }
+  const progress = createProgress('reading');
+  const untilMs = timeOption('--until', options.until, site.timeZone);
+  const { series } = await loadHistory(options.history, site, {
+    zone: options.timeZone ?? null,
+    ...(untilMs === undefined ? {} : { untilMs }),
+    progress,
+  });
+  progress.end();
+  const learned = learnedSpans(bundle);
+  const fromMs = timeOption('--from', options.from, site.timeZone);
+  const fromTick = fromMs === undefined ? learned.end : Math.ceil(fromMs / series.tickMs);
+  const span = judgedSpan(series, bundle, fromTick, fromMs !== undefined);
+  const units = bundle.channels.map((channel) => channel.unit);
+  const cast = hindcast(model, series, { ...span, learn: learned.learn }, units);
+  const head = { bundle: Buffer.from(digest).toString('hex'), site: bundle.site, advisory: ADVISORY };
+  process.stdout.write(
+    options.json
+      ? `${JSON.stringify({ ...head, ...hindcastJson(cast) }, null, 2)}\n`
+      : `${tableText(cast)}\n\n${ADVISORY}\n`,
+  );
+}
+
+/** Where the bundle learned, and the first tick it has not seen; from its provenance. */
+function learnedSpans(bundle: Bundle): { readonly learn: TickSpan | null; readonly end: number } {
+  const lastTick = Math.round(bundle.provenance.lastMs / bundle.tickMs) + 1;
+  let options: { learn?: unknown; calibrate?: unknown; useAll?: unknown } = {};
+  try {
+    options = JSON.parse(bundle.provenance.options) as typeof options;
+  } catch {
+    return { learn: null, end: lastTick };
+  }
+  const learn = spanOf(options.learn);
+  const calibrate = spanOf(options.calibrate);
+  return { learn, end: Math.max(lastTick, calibrate?.toTick ?? lastTick) };
+}
+
+function spanOf(value: unknown): TickSpan | null {
+  if (!Array.isArray(value) || value.length !== 2) return null;
+  const [fromTick, toTick] = value as unknown[];
+  return Number.isSafeInteger(fromTick) && Number.isSafeInteger(toTick)
+    ? { fromTick: fromTick as number, toTick: toTick as number }
+    : null;
+}
+
+function judgedSpan(series: Series, bundle: Bundle, asked: number, isAsked: boolean): TickSpan {
+  const end = series.firstTick + series.ticks;
+  const fromTick = Math.max(asked, series.firstTick + 1);
+  if (end - fromTick >= bundle.horizon) return { fromTick, toTick: end };
+  const why = isAsked ? 'the time given with --from' : 'the end of what the bundle learned and was calibrated from';
+  throw new TrainError(
+    'history',
+    `The history ends at ${time(end, series.tickMs)}; expected at least ${bundle.horizon} ticks (one horizon) after ` +
+      `${time(asked, series.tickMs)}, ${why}, got ${Math.max(0, end - fromTick)}. Give later history, or an earlier --from.`,
+    { details: { from: asked, end } },
+  );
+}
+
+function time(tick: number, tickMs: number): string {
+  return new Date(tick * tickMs).toISOString();
+}
+
+function tableText(cast: Hindcast): string {
+  const H = cast.horizon;
+  const cells = cast.mse.length;
+  const head = [
+    'signal',
+    'step',
+    'mse',
+    'mae',
+    'standardised mse',
+    ...cast.rivals.map((name) => `skill: ${name}`),
+    'coverage',
+    'width',
+  ];
+  const rows = cast.signals.flatMap((signal, i) =>
+    verdictSteps(H).map((h) => {
+      const cell = i * H + h - 1;
+      return [
+        `${signal} [${cast.units[i]}]`,
+        String(h),
+        shortNumber(cast.mse[cell]),
+        shortNumber(cast.mae[cell]),
+        shortNumber(cast.mseStandardised[cell]),
+        ...cast.rivals.map((_, r) => percent(skillScore(cast.mse[cell], cast.rivalMse[r * cells + cell]))),
+        percent(cast.coverage[cell]),
+        shortNumber(cast.width[cell]),
+      ];
+    }),
+  );
+  const right = head.map((_, k) => k).slice(1);
+  return [
+    `${cast.origins} origins, ${new Date(cast.fromMs).toISOString()} to ${new Date(cast.toMs).toISOString()}`,
+    textTable(head, rows, right),
+    `Standardised by the learning part, over all signals and steps 1 to ${H}: mse ${shortNumber(meanOf(cast.mseStandardised))}, mae ${shortNumber(meanOf(cast.maeStandardised))}`,
+  ].join('\n');
+}
+
+function percent(share: number): string {
+  return Number.isFinite(share) ? `${(100 * share).toFixed(1)} %` : '-';
+}

@@ -1,0 +1,57 @@
+/** What a fit came to, in a few lines for a terminal. */
+import { skillScore } from './judge/scores.ts';
+import type { FitResult } from './pipeline.ts';
+import { bytesText, textTable } from './text-table.ts';
+
+/** A table of skill by signal, and what stands around it. */
+export function fitSummary(result: FitResult): string {
+  const { verdicts, audit, chosen, hindcast } = result;
+  const head = [
+    'signal',
+    ...verdicts.horizons.map((h) => `step ${h}`),
+    'all steps',
+    'against',
+    'window ridge',
+    'coverage',
+  ];
+  const rows = verdicts.signals.map((verdict, i) => [
+    verdict.signal,
+    ...verdict.skillAt.map(percent),
+    percent(verdict.skill),
+    verdict.bestRival,
+    percent(skillOver(result, 'window ridge', i)),
+    percent(verdict.coverage),
+  ]);
+  const right = head.flatMap((_, k) => (k > 0 && k !== verdicts.horizons.length + 2 ? [k] : []));
+  const rounding = `${((audit.ratio - 1) * 100).toFixed(2)} %`;
+  return [
+    `Skill on ${hindcast.origins} origins of the judged part (squared error below the best obvious guess; 0 % is no better):`,
+    textTable(head, rows, right),
+    '',
+    ...verdicts.signals.map((verdict) => `  ${verdict.sentence}`),
+    '',
+    verdicts.sentence,
+    `Bundle ${bytesText(result.document.length)}: ${chosen.order} states, ${chosen.basisCount} curves, bank of ${chosen.bank}; ` +
+      `rounding cost ${rounding} of the squared error.`,
+    ...result.warnings.map((warning) => `Note: ${warning}`),
+    '',
+  ].join('\n');
+}
+
+/** Skill of a signal over all steps against one rival; NaN where that rival could not be made. */
+function skillOver({ hindcast }: FitResult, rival: string, signal: number): number {
+  const r = hindcast.rivals.indexOf(rival);
+  if (r === -1) return Number.NaN;
+  const H = hindcast.horizon;
+  let ours = 0;
+  let theirs = 0;
+  for (let h = 0; h < H; h++) {
+    ours += hindcast.mse[signal * H + h];
+    theirs += hindcast.rivalMse[r * hindcast.mse.length + signal * H + h];
+  }
+  return skillScore(ours, theirs);
+}
+
+function percent(share: number): string {
+  return Number.isFinite(share) ? `${(100 * share).toFixed(1)} %` : '-';
+}
