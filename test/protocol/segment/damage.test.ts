@@ -130,7 +130,7 @@ describe('a hostile header', () => {
     sink.bytes(bytes);
     return sink.finish();
   };
-  const _strange = encodeCorrections([{ tick: 1, channel: 200, index: 5 }], 1000);
+  const strange = encodeCorrections([{ tick: 1, channel: 200, index: 5 }], 1000);
   const wrong: [string, Parameters<typeof forge>[0], RegExp][] = [
     ['another magic', { magic: Uint8Array.from(Buffer.from('SWB1')) }, /magic/],
     ['a later format', { format: 2 }, /format: expected 1..1, got 2/],
@@ -157,8 +157,23 @@ describe('a hostile header', () => {
     ['corrections that are not there', { flags: 4, rest: Uint8Array.of(3, 200, 1) }, /correction bytes/],
     [
       'a correction of a channel that is not there',
-      { flags: 4, rest: corrections(1, new Uint8Array(4)) },
-      /correction/,
+      { flags: 4, rest: corrections(1, strange) },
+      /correction 0: expected a channel below 2/,
+    ],
+    [
+      'a correction before 1970',
+      { flags: 4, rest: corrections(1, encodeCorrections([{ tick: -1, channel: 0, index: 5 }], 1000)) },
+      /correction 0/,
+    ],
+    [
+      'a correction past any index',
+      { flags: 4, rest: corrections(1, encodeCorrections([{ tick: 1, channel: 0, index: 2 ** 50 }], 1000)) },
+      /correction 0/,
+    ],
+    [
+      'corrections that end early',
+      { flags: 4, rest: corrections(9, strange.subarray(0, 1)) },
+      /corrections: expected more/,
     ],
   ];
   it.each(wrong)('is refused: %s', (_, parts, message) => {
