@@ -118,6 +118,28 @@ describe('forecasts', () => {
     }
   });
 
+  test('the distance falls by the same amount every tick, on the path as in the state', () => {
+    const level = {
+      ...model,
+      readout: new Float64Array(model.readout.length),
+      seasonalPeriod: 0,
+      seasonalBins: 1,
+      seasonal: Float64Array.of(0.5, -0.5),
+    };
+    const H = level.horizon;
+    const state = run(level, [Float64Array.of(14, 13, 16)]);
+    const start = state.value[0] - 0.5;
+    const left = (age: number): number => Math.max(0, 2 * H - Math.max(H, age)) / H;
+    for (let age = 1; age <= 2 * H + 3; age++) {
+      update(level, state, age, new Float64Array(3).fill(Number.NaN));
+      expect(state.value[0] - 0.5).toBeCloseTo(start * left(age), 12);
+      const path = pathOf(level, state);
+      for (let h = 1; h <= H; h++) {
+        expect((path[h - 1] - level.mean[0]) / level.scale[0] - 0.5).toBeCloseTo(start * left(age + h), 12);
+      }
+    }
+  });
+
   test('forecasts stay inside the clips', () => {
     const wild = { ...model, readout: model.readout.map((weight) => 1e6 * weight) };
     const state = run(wild, syntheticReadings(wild, 50, 9));

@@ -16,7 +16,7 @@ import {
 } from '@stillwell/runtime/filter';
 import fc from 'fast-check';
 import { describe, expect, test } from 'vitest';
-import { syntheticModel, syntheticReadings } from '../../support/models.ts';
+import { seededNumbers, syntheticModel, syntheticReadings } from '../../support/models.ts';
 
 const model = syntheticModel({ inputs: ['valve'], warmupTicks: 10, horizon: 12 });
 
@@ -37,6 +37,16 @@ const runOn = (at: LinearModel, runner: Runner, readings: readonly Float64Array[
   }
   return hash.digest('hex');
 };
+/** Puts a run of spikes, long enough for the guard to give in, at about every tenth tick. */
+const withSpikes = (readings: Float64Array[], seed: number): Float64Array[] => {
+  const random = seededNumbers(seed + 1);
+  let left = 0;
+  for (const values of readings) {
+    if (random() < 0.1) left = 1 + Math.floor(6 * random());
+    if (left-- > 0) values[0] = model.clipHigh[0];
+  }
+  return readings;
+};
 const begin = (): Runner => ({ state: createState(model), bounds: createBounds(model) });
 
 test('restoring and going on equals never having stopped, to the bit', () => {
@@ -46,7 +56,7 @@ test('restoring and going on equals never having stopped, to the bit', () => {
       fc.integer(),
       fc.double({ min: 0, max: 0.9, noNaN: true }),
       (stop, seed, missing) => {
-        const readings = syntheticReadings(model, 120, seed, missing);
+        const readings = withSpikes(syntheticReadings(model, 120, seed, missing), seed);
         const whole = begin();
         runOn(model, whole, readings.slice(0, stop));
         const restored = {
