@@ -78,6 +78,8 @@ export class Predictors {
   #seenShare = FIRST_SEEN;
   #seenWorth = FIRST_WORTH;
   #seenSpeak = false;
+  /** Twice edge, sign, spread: the work of this reading that may be asked for again. Sign 0: nothing. */
+  readonly #kept = new Float64Array(6);
   readonly #scalePrior: number;
   /** The set in use for the reading at hand. */
   #weights: Float64Array = this.#weightSets[0];
@@ -126,6 +128,8 @@ export class Predictors {
     this.#levelsKnow = this.#levels.prepare(this.#last);
     this.#levelsSpeak = this.#levelsKnow && this.#weights[LEVELS]! > SILENT;
     this.#seenSpeak = this.#seenValues.isReady && this.#seenWorth > WORTH;
+    this.#kept[1] = 0;
+    this.#kept[4] = 0;
     const heaviest = this.#heaviest();
     this.#pivot = heaviest < CONTINUOUS ? Math.round(this.#centres[heaviest >> 1]!) : this.#last;
     this.#width = heaviest < CONTINUOUS ? 1 / this.#inverse[heaviest]! : 0;
@@ -146,8 +150,7 @@ export class Predictors {
     let sum = this.#spread(sign, x - 0.5);
     if (this.#seenSpeak) {
       const edge = this.#seenValues.edge(sign, x);
-      const onSeen = Number.isNaN(edge) ? 0 : this.#spread(sign, edge);
-      sum += this.#seenShare * (onSeen - sum);
+      sum += this.#seenShare * ((Number.isNaN(edge) ? 0 : this.#spreadKept(sign, edge)) - sum);
     }
     if (sign * this.#last >= x) sum += this.#weights[REPEAT]!;
     if (this.#levelsSpeak) sum += this.#weights[LEVELS]! * this.#levels.tail(sign, x);
@@ -164,6 +167,18 @@ export class Predictors {
       sum += this.#weights[e + 1]! * upperTail(distance * this.#inverse[e + 1]!);
     }
     return sum;
+  }
+
+  /** As spread, kept for the two edges used last: halving asks for the same ones again and again. */
+  #spreadKept(sign: number, edge: number): number {
+    const kept = this.#kept;
+    if (kept[0] === edge && kept[1] === sign) return kept[2]!;
+    if (kept[3] === edge && kept[4] === sign) return kept[5]!;
+    kept.copyWithin(3, 0, 3);
+    kept[0] = edge;
+    kept[1] = sign;
+    kept[2] = this.#spread(sign, edge);
+    return kept[2]!;
   }
 
   /** Takes the first value where nothing was forecast: there is no error to learn from. */
