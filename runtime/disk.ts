@@ -111,7 +111,8 @@ export const nodeDisk: Disk = {
   makeFolder: (path) => void mkdirSync(path, { recursive: true }),
   read(path) {
     try {
-      return readFileSync(path);
+      // A plain array: a Buffer's slice would be a view where everyone expects a copy.
+      return new Uint8Array(readFileSync(path));
     } catch (error) {
       if (isMissing(error)) return null;
       throw error;

@@ -178,7 +178,7 @@ class LastingConnection implements Connection {
     );
     this.#client = client;
     client.handleMessage = (packet, done) => {
-      this.#options.onMessage?.(packet.topic, asBuffer(packet.payload), {
+      this.#options.onMessage?.(packet.topic, new Uint8Array(asBuffer(packet.payload)), {
         qos: packet.qos,
         retain: packet.retain,
         duplicate: packet.dup,

@@ -44,7 +44,7 @@ export function encodeCheckpoint(checkpoint: Checkpoint): Uint8Array {
   bytes.set(state, HEAD_BYTES);
   bytes.set(bounds, HEAD_BYTES + state.length);
   bytes.writeUInt32BE(crc32(bytes.subarray(8)), 4);
-  return bytes;
+  return new Uint8Array(bytes);
 }
 
 /** Null when the bytes do not check. */

@@ -7,6 +7,7 @@ import {
   openConnection,
 } from '../../../runtime/mqtt/connection.ts';
 import { freePort, mosquittoMissing, startAedes, startMosquitto, type TestBroker } from '../../support/broker.ts';
+import { until } from '../../support/until.ts';
 
 const open: Connection[] = [];
 const brokers: TestBroker[] = [];
@@ -36,14 +37,6 @@ function watch(url: string, clientId: string, extra: Partial<ConnectionOptions> 
   });
   open.push(connection);
   return { connection, events, messages };
-}
-
-async function until(what: string, claim: () => boolean, timeoutMs = 8000): Promise<void> {
-  const end = Date.now() + timeoutMs;
-  while (!claim()) {
-    if (Date.now() > end) throw new Error(`not within ${timeoutMs} ms: ${what}`);
-    await new Promise((resolve) => setTimeout(resolve, 10));
-  }
 }
 
 async function keep(broker: Promise<TestBroker>): Promise<TestBroker> {

@@ -1,0 +1,119 @@
+import { describe, expect, test } from 'vitest';
+import { decodeCheckpoint, encodeCheckpoint } from '../../../runtime/residuals/checkpoint.ts';
+import { readWal, Wal, type WalRecord } from '../../../runtime/residuals/wal.ts';
+import { MemoryDisk } from '../../support/memory-disk.ts';
+import { seededNumbers } from '../../support/models.ts';
+
+const head = { channelCount: 3, stream: new Uint8Array([1, 2, 3, 4, 5, 6, 7, 8]), number: 42 };
+const open = {
+  newestMs: 123_456,
+  channels: [0, 2],
+  times: [1000, 2000.5],
+  values: [1.5, -2],
+  counters: [Number.NaN, 7, Number.NaN],
+  latest: [1000, Number.NaN, 2000.5],
+};
+
+function written(): { bytes: Uint8Array; ends: number[] } {
+  const disk = new MemoryDisk();
+  const wal = new Wal(disk, 'j/1', head);
+  const ends = [disk.size('j/1')];
+  const note = (): void => void ends.push(disk.size('j/1'));
+  wal.tick(100, Float64Array.of(1, Number.NaN, 0.1));
+  note();
+  wal.change({ tick: 99, channel: 2, value: 3.25 });
+  note();
+  wal.tick(101, Float64Array.of(Number.NaN, 2, -1e-300));
+  note();
+  wal.open(open);
+  note();
+  return { bytes: disk.read('j/1')!, ends };
+}
+
+const { bytes, ends } = written();
+const all = readWal(bytes)!.records;
+
+test('what was written comes back', () => {
+  expect(readWal(bytes)!.head).toEqual(head);
+  expect(all).toEqual([
+    { kind: 'tick', tick: 100, values: Float64Array.of(1, Number.NaN, 0.1) },
+    { kind: 'change', tick: 99, channel: 2, value: 3.25 },
+    { kind: 'tick', tick: 101, values: Float64Array.of(Number.NaN, 2, -1e-300) },
+    { kind: 'open', open },
+  ]);
+});
+
+describe('a torn tail', () => {
+  /** Records whose frames end within the first `length` bytes. */
+  const whole = (length: number): readonly WalRecord[] => all.slice(0, ends.filter((end) => end <= length).length - 1);
+
+  test('cut at every byte keeps the whole records before, and says where they end', () => {
+    for (let length = ends[0]!; length <= bytes.length; length++) {
+      const content = readWal(bytes.subarray(0, length))!;
+      expect(content.records).toEqual(whole(length));
+      expect(ends).toContain(content.validBytes);
+    }
+  });
+
+  test('filled with zeros from any byte invents nothing', () => {
+    for (let from = ends[0]!; from < bytes.length; from++) {
+      const zeroed = Uint8Array.from(bytes).fill(0, from);
+      const { records } = readWal(zeroed)!;
+      // Zeros that stood there anyway leave their record whole.
+      const same = zeroed.every((byte, i) => byte === bytes[i]);
+      if (!same) expect(records.length).toBeLessThan(all.length);
+      expect(all.slice(0, records.length)).toEqual(records);
+    }
+  });
+
+  test('of noise from any byte invents nothing', () => {
+    const random = seededNumbers(5);
+    for (let from = ends[0]!; from < bytes.length; from++) {
+      const noisy = Uint8Array.from(bytes, (byte, i) => (i < from ? byte : Math.floor(random() * 256)));
+      const { records } = readWal(noisy)!;
+      expect(records).toEqual(all.slice(0, records.length));
+      expect(records.length).toBeLessThanOrEqual(whole(from).length + 1);
+    }
+  });
+
+  test('in the head leaves nothing to believe', () => {
+    for (let length = 0; length < ends[0]!; length++) expect(readWal(bytes.subarray(0, length))).toBeNull();
+    for (let i = 0; i < ends[0]!; i++)
+      expect(readWal(Uint8Array.from(bytes, (byte, j) => (i === j ? byte ^ 1 : byte)))).toBeNull();
+  });
+});
+
+test('appending goes on behind the last whole record', () => {
+  const disk = new MemoryDisk();
+  disk.write('j/1', bytes.subarray(0, bytes.length - 3));
+  const { validBytes } = readWal(disk.read('j/1')!)!;
+  const wal = new Wal(disk, 'j/1', head, validBytes);
+  wal.tick(102, Float64Array.of(4, 5, 6));
+  expect(readWal(disk.read('j/1')!)!.records).toEqual([
+    ...all.slice(0, 3),
+    { kind: 'tick', tick: 102, values: Float64Array.of(4, 5, 6) },
+  ]);
+});
+
+describe('a checkpoint', () => {
+  const checkpoint = {
+    stream: head.stream,
+    number: 7,
+    sinceKeyed: 3,
+    bundle: new Uint8Array(32).fill(8),
+    state: new Uint8Array([1, 2, 3]),
+    bounds: new Uint8Array([4, 5]),
+  };
+
+  test('comes back', () => expect(decodeCheckpoint(encodeCheckpoint(checkpoint))).toEqual(checkpoint));
+
+  test('cut or with any bit turned is not believed', () => {
+    const good = encodeCheckpoint(checkpoint);
+    for (let length = 0; length < good.length; length++) expect(decodeCheckpoint(good.subarray(0, length))).toBeNull();
+    for (let bit = 0; bit < 8 * good.length; bit++) {
+      const turned = Uint8Array.from(good);
+      turned[bit >> 3]! ^= 1 << (bit & 7);
+      expect(decodeCheckpoint(turned)).toBeNull();
+    }
+  });
+});
