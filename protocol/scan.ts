@@ -186,7 +186,6 @@ export const scanMessagePack = (bytes: Uint8Array, limits: ScanLimits, form: Sca
       if (open.length >= limits.maxDepth) refuse(at, `expected at most ${limits.maxDepth} levels, got more`);
       if (left > limits.maxItems)
         refuse(at, `expected at most ${limits.maxItems} values, got ${left} in one ${token.kind}`);
-      need(view, start, left);
       const keys = token.kind === 'map' && form === 'any' ? new Set<string>() : null;
       open.push({ isMap: token.kind === 'map', left, lastKey: null, keys });
       at = start;

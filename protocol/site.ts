@@ -49,6 +49,7 @@ export interface Input extends Signal {
   readonly planTopic: string | null;
 }
 
+/** What of the calendar the plant follows. */
 export interface Calendar {
   readonly timeOfDay: boolean;
   readonly dayOfWeek: boolean;

@@ -152,6 +152,12 @@ describe('a good site file', () => {
     expect(parseSite(text).latenessMs).toBe(10_000);
   });
 
+  test('line ends of another system and a byte order mark change nothing', () => {
+    expect(parseSite(`\ufeff${GOOD.replaceAll('\n', '\r\n')}`)).toEqual(parseSite(GOOD));
+    const broken = edited('tick: 1min', 'tick: soon').replaceAll('\n', '\r\n');
+    expect(refusalOf(() => parseSite(broken, 'site.yaml')).message).toContain('site.yaml:5:7: tick: ');
+  });
+
   test('anchors may spare repetition', () => {
     const text = edited('payload: {json: /value, time: /ts}', 'payload: &p {json: /value, time: /ts}').replace(
       'payload: number',
