@@ -7,7 +7,7 @@ import { MAX_RECEIPT_SEGMENTS, parseTopic, receiptMessage, topicsOf } from '@sti
 import { Chain, type ChainEvent } from './chain.ts';
 import { type Arrival, type Outcome, type SegmentName, takeIn } from './intake.ts';
 import type { Shelf } from './shelf.ts';
-import type { Store } from './store/open.ts';
+import { type Store, toBytes } from './store/open.ts';
 
 /** What a desk tells as it goes: one JSON line each under `--json`. */
 export type DeskEvent =
@@ -85,6 +85,17 @@ export class Collector {
     return this.#pump;
   }
 
+  /** Gives the receipts that an earlier run could not: killed after the commit, or the link was down. */
+  async repeatReceipts(): Promise<void> {
+    const rows = await this.#options.store.db
+      .selectFrom('segments')
+      .select(['site', 'gateway', 'stream', 'number', 'hash'])
+      .where('receipted', '=', 0)
+      .orderBy('number')
+      .execute();
+    await this.#receipt(rows.map((row) => ({ ...row, hash: toBytes(row.hash) })));
+  }
+
   /** Resolves when everything taken so far is committed, receipted and, as far as possible, decoded. */
   async settle(): Promise<void> {
     do await this.#pump;
@@ -110,7 +121,7 @@ export class Collector {
       this.#tell({ event: 'not-kept', dropped: batch.length, message: (error as Error).message });
     }
     for (const outcome of outcomes) this.#tell({ event: 'segment', ...outcome });
-    const receipts = this.#receipt(outcomes);
+    const receipts = this.#receipt(outcomes.flatMap((outcome) => (outcome.kind === 'refused' ? [] : [outcome.name])));
     await this.#decode(outcomes);
     await receipts;
     if (this.#dropped > 0) {
@@ -124,13 +135,13 @@ export class Collector {
   }
 
   /** One message for each gateway and stream; only what is committed is named. */
-  async #receipt(outcomes: readonly Outcome[]): Promise<void> {
+  async #receipt(committed: readonly SegmentName[]): Promise<void> {
     const groups = new Map<string, SegmentName[]>();
-    for (const outcome of outcomes) {
-      if (outcome.kind === 'refused') continue;
-      const { site, gateway, stream } = outcome.name;
-      const key = JSON.stringify([site, gateway, stream]);
-      groups.set(key, [...(groups.get(key) ?? []), outcome.name]);
+    for (const name of committed) {
+      const key = JSON.stringify([name.site, name.gateway, name.stream]);
+      const group = groups.get(key);
+      if (group) group.push(name);
+      else groups.set(key, [name]);
     }
     const sent = [...groups.values()].flatMap((names) => {
       const messages: Promise<void>[] = [];
@@ -148,10 +159,24 @@ export class Collector {
     try {
       const payload = receiptMessage({ site, gateway, stream: Uint8Array.from(Buffer.from(stream, 'hex')), segments });
       await this.#options.publish(topicsOf(this.#options.root, site).receipts, payload);
+      await this.#markReceipted(names);
       this.#tell({ event: 'receipt', site, gateway, segments: segments.length });
     } catch (error) {
       this.#tell({ event: 'receipt-lost', site, message: (error as Error).message });
     }
+  }
+
+  async #markReceipted(names: readonly SegmentName[]): Promise<void> {
+    const { site, gateway, stream } = names[0]!;
+    const numbers = names.map((name) => name.number);
+    await this.#options.store.db
+      .updateTable('segments')
+      .set({ receipted: 1 })
+      .where('site', '=', site)
+      .where('gateway', '=', gateway)
+      .where('stream', '=', stream)
+      .where('number', 'in', numbers)
+      .execute();
   }
 
   async #decode(outcomes: readonly Outcome[]): Promise<void> {

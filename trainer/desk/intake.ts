@@ -145,6 +145,7 @@ function newRow(segment: Checked, arrival: Arrival) {
     received_ms: arrival.atMs,
     last_ms: arrival.atMs,
     copies: 0,
+    receipted: 0,
     state: 'waiting' as const,
     reason: null,
     readings: null,

@@ -59,6 +59,8 @@ export async function startDesk(options: DeskOptions): Promise<RunningDesk> {
         clearInterval(timer);
         await link.collector.settle();
         await link.connection.end();
+        // What came in between is committed too; its receipt is given at the next start.
+        await link.collector.settle();
         await store.close();
       },
     };
@@ -71,15 +73,17 @@ export async function startDesk(options: DeskOptions): Promise<RunningDesk> {
 async function openLink(options: DeskOptions, store: Store, shelf: Shelf) {
   const { root, onEvent } = options;
   let connection: Connection | null = null;
+  let opened: (connection: Connection) => void = () => {};
+  // A kept session speaks before the connect is known here; its receipts wait for that instead of being lost.
+  const open = new Promise<Connection>((resolve) => {
+    opened = resolve;
+  });
   const collector = new Collector({
     store,
     shelf,
     root,
     onEvent,
-    publish: (topic, payload) =>
-      connection === null
-        ? Promise.reject(new Error('not connected yet'))
-        : connection.publish({ topic, payload, qos: 1, retain: false }),
+    publish: async (topic, payload) => (await open).publish({ topic, payload, qos: 1, retain: false }),
   });
   await collector.refresh(true);
   connection = await connectBroker({
@@ -93,6 +97,7 @@ async function openLink(options: DeskOptions, store: Store, shelf: Shelf) {
       if (connection !== null || event.kind === 'connected') onEvent({ event: 'connection', ...connectionText(event) });
     },
   });
+  opened(connection);
   // MQTT 5 lets several desks share one fleet; 3.1.1 knows no shared subscription.
   const filter = topicsOf(root, '+').segments;
   try {
@@ -101,6 +106,7 @@ async function openLink(options: DeskOptions, store: Store, shelf: Shelf) {
     await connection.end(true);
     throw brokerError(cause);
   }
+  await collector.repeatReceipts();
   return { connection, collector };
 }
 

@@ -22,6 +22,7 @@ export interface MetaTable {
  * state      'waiting' (for its bundle or for its predecessor), 'decoded' or 'broken'; `reason` says why in words
  * end_state  filter state after the last tick, kept only until the successor is decoded
  * copies     how often the same bytes came again
+ * receipted  1 once the broker took the receipt; others get it at the next start
  */
 export interface SegmentTable {
   id: Generated<number>;
@@ -39,6 +40,7 @@ export interface SegmentTable {
   received_ms: number;
   last_ms: number;
   copies: number;
+  receipted: number;
   state: 'waiting' | 'decoded' | 'broken';
   reason: string | null;
   readings: number | null;
@@ -130,6 +132,7 @@ const FIRST_TABLES = [
     hash BLOB NOT NULL, bundle TEXT NOT NULL, first_tick INTEGER NOT NULL, ticks INTEGER NOT NULL,
     keyed INTEGER NOT NULL, bytes BLOB NOT NULL, size INTEGER NOT NULL,
     received_ms INTEGER NOT NULL, last_ms INTEGER NOT NULL, copies INTEGER NOT NULL,
+    receipted INTEGER NOT NULL,
     state TEXT NOT NULL, reason TEXT, readings INTEGER, end_state BLOB,
     UNIQUE (site, gateway, stream, number))`,
   'CREATE INDEX segments_state ON segments (state, bundle)',
