@@ -68,21 +68,25 @@ export function row(given: {
   };
 }
 
-/** Seconds of `repeats` runs of `work`, after one that is not counted. */
+/** Seconds of `repeats` runs of `work`, after one that is not counted; `leastCpu` holds up on a busy machine. */
 export async function timed(
   repeats: number,
   work: () => unknown,
-): Promise<{ least: number; mean: number; deviation: number }> {
+): Promise<{ least: number; mean: number; deviation: number; leastCpu: number }> {
   await work();
   const seconds: number[] = [];
+  let leastCpu = Number.POSITIVE_INFINITY;
   for (let i = 0; i < repeats; i++) {
     const start = performance.now();
+    const cpu = process.cpuUsage();
     await work();
+    const { user, system } = process.cpuUsage(cpu);
+    leastCpu = Math.min(leastCpu, (user + system) / 1e6);
     seconds.push((performance.now() - start) / 1000);
   }
   const mean = seconds.reduce((sum, s) => sum + s, 0) / repeats;
   const variance = seconds.reduce((sum, s) => sum + (s - mean) ** 2, 0) / Math.max(1, repeats - 1);
-  return { least: Math.min(...seconds), mean, deviation: Math.sqrt(variance) };
+  return { least: Math.min(...seconds), mean, deviation: Math.sqrt(variance), leastCpu };
 }
 
 const COLUMNS = [
