@@ -17,7 +17,7 @@ const STEPS_MS = [
 /** A usual interval this much below a step still counts as that step: clocks waver. */
 const WAVER = 1.02;
 /** Jitter beyond this share of the interval is worth a word. */
-const JITTER_SHARE = 0.2;
+const JITTER_SHARE = 0.1;
 
 /** Intervals between readings, ms; NaN where fewer than two readings exist. */
 export interface Cadence {

@@ -33,7 +33,7 @@ export function fileFindings(files: readonly FileRead[]): Finding[] {
       ...whole,
       kind: 'columns',
       count: ignored.length,
-      sentence: `${counted(ignored.length, 'column, signal or topic').replace('topics', 'topic')} in the files stand in no line of the site file and were passed over: ${list(ignored)}.`,
+      sentence: `The files also hold ${list(ignored)}, which the site file does not name; passed over.`,
       advice: 'Add them to the site file if they should be learned from.',
     });
   const marks = summed(files, (file) => file.missingMarks);

@@ -39,7 +39,10 @@ function gapFinding(series: Series, name: string | null, runs: Runs): Finding {
   const share = runs.ticks / series.ticks;
   const from = (series.firstTick + runs.longestAt) * series.tickMs;
   const to = from + runs.longest * series.tickMs;
-  const who = name === null ? 'The history has no reading at all' : `${name} has no reading, while others have,`;
+  const who =
+    name === null
+      ? 'The history has no reading at all'
+      : `${name} ${name.includes(', ') ? 'have' : 'has'} no reading, while others have,`;
   return {
     kind: name === null ? 'gaps' : 'missing',
     weight: share >= SERIOUS_SHARE ? 'serious' : share >= LOOK_SHARE ? 'look' : 'note',
@@ -53,7 +56,7 @@ function gapFinding(series: Series, name: string | null, runs: Runs): Finding {
   };
 }
 
-/** Gaps of all signals together first, then each signal's own. */
+/** Gaps of all signals together first, then those of single signals, signals that miss the same named together. */
 export function gapFindings(series: Series): Finding[] {
   const { values, ticks, names } = series;
   const isEmpty = new Uint8Array(ticks).fill(1);
@@ -61,10 +64,16 @@ export function gapFindings(series: Series): Finding[] {
   const found: Finding[] = [];
   const all = runsOf(ticks, (n) => isEmpty[n] === 1);
   if (all.count > 0) found.push(gapFinding(series, null, all));
+  const alike = new Map<string, { names: string[]; runs: Runs }>();
   values.forEach((one, c) => {
-    const own = runsOf(ticks, (n) => Number.isNaN(one[n]) && isEmpty[n] === 0);
-    if (own.count > 0) found.push(gapFinding(series, names[c] as string, own));
+    const runs = runsOf(ticks, (n) => Number.isNaN(one[n]) && isEmpty[n] === 0);
+    if (runs.count === 0) return;
+    const key = Object.values(runs).join(' ');
+    const group = alike.get(key) ?? { names: [], runs };
+    group.names.push(names[c] as string);
+    alike.set(key, group);
   });
+  for (const group of alike.values()) found.push(gapFinding(series, group.names.join(', '), group.runs));
   return found;
 }
 

@@ -17,7 +17,25 @@ function offLattice(values: Float64Array, { step, offset }: FoundLattice): numbe
   return off;
 }
 
-/** A declared resolution the readings do not keep to, values without any lattice, or 32-bit floats printed in full. */
+/** One note for all signals that went through 32-bit floats and were printed in full. */
+export function singleFindings(signals: readonly Signal[], lattices: readonly FoundLattice[]): Finding[] {
+  const names = signals.filter((_, c) => lattices[c]?.how === 'float32 decimals').map(({ name }) => name);
+  if (names.length === 0) return [];
+  return [
+    {
+      kind: 'resolution',
+      weight: 'note',
+      signal: names.length === 1 ? (names[0] as string) : null,
+      from: null,
+      to: null,
+      count: names.length,
+      sentence: `${names.join(', ')} went through 32-bit floats and ${names.length === 1 ? 'was' : 'were'} printed with digits never measured; the steps above give every reading back.`,
+      advice: 'Nothing to do.',
+    },
+  ];
+}
+
+/** A declared resolution the readings do not keep to, or values without any lattice. */
 export function latticeFindings(signal: Signal, channel: ChannelReadings, lattice: FoundLattice): Finding[] {
   const { name } = signal;
   const whole = { kind: 'resolution', signal: name, from: null, to: null } as const;
@@ -30,16 +48,6 @@ export function latticeFindings(signal: Signal, channel: ChannelReadings, lattic
         count: readings,
         sentence: `${name} has more digits than a sensor gives; it was put on steps of ${figure(lattice.step)}, moving no reading by more than half of that.`,
         advice: 'Declare the resolution in the site file if it is known: coarser steps cost fewer bytes on the wire.',
-      },
-    ];
-  if (lattice.how === 'float32 decimals')
-    return [
-      {
-        ...whole,
-        weight: 'note',
-        count: readings,
-        sentence: `${name} went through 32-bit floats and was printed with digits it never had; steps of ${figure(lattice.step)} give every reading back.`,
-        advice: 'Nothing to do.',
       },
     ];
   if (lattice.how !== 'declared') return [];

@@ -19,8 +19,11 @@ interface Runs {
   readonly lengths: Float64Array;
 }
 
-/** Runs of values that are none of the `resting` ones, unless they last a quarter of the history. */
-function runsOf(values: Float64Array, resting: readonly number[]): Runs {
+/** Share of a resting value's readings that one run must hold to be a stuck sensor after all. */
+const ALL_AT_ONCE = 0.9;
+
+/** Runs of values; those of a `resting` value only where nearly all of its readings are in one. */
+function runsOf(values: Float64Array, resting: ValuesSeen['resting']): Runs {
   const starts = new GrowingList();
   const lengths = new GrowingList();
   let at = -1;
@@ -28,7 +31,8 @@ function runsOf(values: Float64Array, resting: readonly number[]): Runs {
   let held = Number.NaN;
   const close = (): void => {
     const length = last - at + 1;
-    if (at < 0 || (length < values.length / 4 && resting.includes(held))) return;
+    const rest = resting.find(({ value }) => value === held);
+    if (at < 0 || (rest !== undefined && length < ALL_AT_ONCE * rest.count)) return;
     starts.push(at);
     lengths.push(length);
   };

@@ -13,7 +13,7 @@ import { type Finding, iso } from './finding.ts';
 import { gapFindings, presenceOf } from './gaps.ts';
 import type { ChannelReadings, FileRead, History } from './history.ts';
 import { outsideFindings, spikeFindings } from './implausible.ts';
-import { latticeFindings } from './lattice-findings.ts';
+import { latticeFindings, singleFindings } from './lattice-findings.ts';
 import { type FoundLattice, findLattices } from './resolution.ts';
 import type { Series } from './series.ts';
 import { NEAR_CONSTANT, stuckFindings } from './stuck.ts';
@@ -153,6 +153,7 @@ export function surveyHistory(
       ...latticeFindings(signal, history.channels[c] as ChannelReadings, lattices[c] as FoundLattice),
       ...cadenceFindings(signal.name, cadences[c] as { intervalMs: number; jitterMs: number }, site.tickMs),
     ]),
+    ...singleFindings(channels, lattices),
     ...copyFindings(
       series,
       signals.map(({ isStill }) => isStill),

@@ -13,7 +13,7 @@ export interface ValuesSeen {
   readonly commonest: number;
   readonly commonestShare: number;
   /** Values that make up at least `RESTING` of the readings each. */
-  readonly resting: readonly number[];
+  readonly resting: readonly { readonly value: number; readonly count: number }[];
 }
 
 /** A value a signal rests at (a pump that is off, rain that does not fall) is not a fault however long it lasts. */
@@ -22,7 +22,7 @@ const RESTING = 0.2;
 /** Counts the values of one signal; NaN is passed over. */
 export function seeValues(values: Float64Array): ValuesSeen {
   const sorted = present(values).sort();
-  const resting: number[] = [];
+  const resting: { value: number; count: number }[] = [];
   let distinct = 0;
   let commonest = Number.NaN;
   let most = 0;
@@ -35,7 +35,7 @@ export function seeValues(values: Float64Array): ValuesSeen {
       most = end - at;
       commonest = value;
     }
-    if (end - at >= RESTING * sorted.length) resting.push(value);
+    if (end - at >= RESTING * sorted.length) resting.push({ value, count: end - at });
     at = end;
   }
   return {
