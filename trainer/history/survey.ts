@@ -4,7 +4,7 @@
  */
 import { basename } from 'node:path';
 import type { Signal, Site } from '@stillwell/protocol';
-import { cadenceFindings, cadenceOf, suggestTick } from './cadence.ts';
+import { type Cadence, cadenceFindings, cadenceOf, suggestTick } from './cadence.ts';
 import { channelsOf } from './channels.ts';
 import { clockChangeFindings } from './clock-changes.ts';
 import { copyFindings } from './copies.ts';
@@ -82,7 +82,7 @@ function figuresOf(
   role: SurveyedSignal['role'],
   channel: ChannelReadings,
   laid: Float64Array,
-  cadence: { intervalMs: number; jitterMs: number },
+  cadence: Cadence,
   lattice: FoundLattice,
   seen: ValuesSeen,
 ): SurveyedSignal {
@@ -112,6 +112,18 @@ function orderFindings(history: History, orders: ReadonlyMap<Float64Array, Uint3
   });
 }
 
+/** Cadence by channel; channels that share their times and miss none of them share the work. */
+function cadencesOf(history: History, orders: ReadonlyMap<Float64Array, Uint32Array | null>): Cadence[] {
+  const whole = new Map<Float64Array, Cadence>();
+  return history.channels.map((channel) => {
+    const isWhole = !channel.values.some(Number.isNaN);
+    const known = isWhole ? whole.get(channel.times) : undefined;
+    const cadence = known ?? cadenceOf(channel, orders.get(channel.times) ?? null);
+    if (isWhole) whole.set(channel.times, cadence);
+    return cadence;
+  });
+}
+
 const WEIGHTS = { serious: 0, look: 1, note: 2 } as const;
 
 /**
@@ -129,7 +141,7 @@ export function surveyHistory(
   const orders = new Map(history.channels.map(({ times }) => [times, null as Uint32Array | null]));
   for (const times of orders.keys()) orders.set(times, timeOrder(times));
   const channels = channelsOf(site);
-  const cadences = history.channels.map((channel) => cadenceOf(channel, orders.get(channel.times) ?? null));
+  const cadences = cadencesOf(history, orders);
   const seen = series.values.map(seeValues);
   const signals = channels.map((signal, c) =>
     figuresOf(
@@ -137,7 +149,7 @@ export function surveyHistory(
       c < history.signalCount ? 'signal' : 'input',
       history.channels[c] as ChannelReadings,
       series.values[c] as Float64Array,
-      cadences[c] as { intervalMs: number; jitterMs: number },
+      cadences[c] as Cadence,
       lattices[c] as FoundLattice,
       seen[c] as ValuesSeen,
     ),
@@ -151,7 +163,7 @@ export function surveyHistory(
       ...outsideFindings(signal, history.channels[c] as ChannelReadings),
       ...spikeFindings(series, c),
       ...latticeFindings(signal, history.channels[c] as ChannelReadings, lattices[c] as FoundLattice),
-      ...cadenceFindings(signal.name, cadences[c] as { intervalMs: number; jitterMs: number }, site.tickMs),
+      ...cadenceFindings(signal.name, cadences[c] as Cadence, site.tickMs),
     ]),
     ...singleFindings(channels, lattices),
     ...copyFindings(

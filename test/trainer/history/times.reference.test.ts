@@ -84,6 +84,12 @@ describe('clock changes of 2024', () => {
     ]);
     expect(pass(['2024-10-27T02:30', ...local.toReversed()]).times.slice(1)).toEqual(utc.toReversed());
   });
+  it('tells them apart in an hourly file, where the doubled hour is one repeated time', () => {
+    const reader = new TimeReader('Europe/London');
+    const first = reader.readText('2024-10-27T01:00', Date.UTC(2024, 9, 26, 23));
+    expect(first).toBe(Date.UTC(2024, 9, 27, 0));
+    expect(reader.readText('2024-10-27T01:00', first)).toBe(Date.UTC(2024, 9, 27, 1));
+  });
   it('flags times in a skipped hour and reads them with the offset before it', () => {
     const reader = new TimeReader('America/New_York');
     expect(reader.readText('2024-03-10T02:30', NEVER)).toBe(Date.UTC(2024, 2, 10, 7, 30));
