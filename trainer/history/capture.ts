@@ -48,6 +48,7 @@ export function topicOf(path: string, line: Readonly<Record<string, unknown>>, n
   throw refusal({ file: path, line: number, field: 'topic' }, 'a topic', shownMember(topic), 'mend or drop this line');
 }
 
+/** Reads one file of captured messages. */
 export class CaptureReader implements FileReader {
   readonly #path: string;
   readonly #signals: readonly Signal[];

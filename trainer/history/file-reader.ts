@@ -8,6 +8,7 @@ import type { TimeReader } from './times.ts';
 /** What a reader can tell of a file once it is through. */
 export type FileAccount = Omit<FileRead, 'file' | 'bytes' | 'sha256' | 'timeKind'>;
 
+/** The reader of one file: blocks in, an account out. */
 export interface FileReader {
   /** Takes the next block of whole lines. */
   push(block: Buffer): void;

@@ -5,6 +5,7 @@
 /** How much it matters: 'note' needs nothing, 'look' should be looked at, 'serious' will spoil a fit or already lost readings. */
 export type Weight = 'note' | 'look' | 'serious';
 
+/** What kind of trouble a finding is about, as a closed set. */
 export type FindingKind =
   | 'gaps'
   | 'missing'

@@ -17,6 +17,7 @@ export interface Span {
   readonly untilMs: number;
 }
 
+/** All readings of one history while its files are read. */
 export class Gathering {
   readonly channelCount: number;
   readonly span: Span;

@@ -9,6 +9,7 @@ import type { Series } from './series.ts';
 import { type Survey, surveyHistory } from './survey.ts';
 import { layOnTicks } from './ticks.ts';
 
+/** A history ready to learn from. */
 export interface LoadedHistory {
   readonly history: History;
   readonly series: Series;

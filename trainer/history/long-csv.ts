@@ -9,6 +9,7 @@ import { RecordScanner, type RecordView } from './records.ts';
 import { refusal, shown } from './refusal.ts';
 import type { TimeReader } from './times.ts';
 
+/** Reads one long CSV file. */
 export class LongCsvReader implements FileReader {
   readonly #path: string;
   readonly #separator: string;

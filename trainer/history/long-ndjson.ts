@@ -8,6 +8,7 @@ import { numberOfText } from './numbers.ts';
 import { refusal } from './refusal.ts';
 import type { TimeReader } from './times.ts';
 
+/** Reads one file of long JSON lines. */
 export class LongNdjsonReader implements FileReader {
   readonly #path: string;
   readonly #channelOf: ReadonlyMap<string, number>;

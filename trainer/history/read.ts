@@ -16,6 +16,7 @@ import { type InputFile, inspectFile, readBlocks } from './input-file.ts';
 import { refusal, shown } from './refusal.ts';
 import { TimeReader } from './times.ts';
 
+/** How to read a history. */
 export interface ReadOptions {
   /** Zone of times that carry none, before the site's own; null: the site's. */
   readonly zone: string | null;

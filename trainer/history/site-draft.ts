@@ -31,6 +31,7 @@ export interface SiteDraft {
   readonly comments: Readonly<Record<string, string>>;
 }
 
+/** What the readings cannot tell of a site. */
 export interface DraftOptions {
   readonly name: string;
   readonly equipmentClass: string;

@@ -48,6 +48,7 @@ export interface SurveyedSignal {
   readonly presence: readonly number[];
 }
 
+/** The whole survey; dates are ISO, UTC. */
 export interface Survey {
   readonly format: number;
   readonly site: string;

@@ -3,6 +3,7 @@
  */
 import { present } from './order-statistics.ts';
 
+/** What one signal’s values were. */
 export interface ValuesSeen {
   readonly readings: number;
   readonly distinct: number;

@@ -9,6 +9,7 @@ import { RecordScanner, type RecordView } from './records.ts';
 import { refusal } from './refusal.ts';
 import { shownTime, type TimeReader } from './times.ts';
 
+/** Reads one wide CSV file. */
 export class WideCsvReader implements FileReader {
   readonly #path: string;
   readonly #separator: string;
