@@ -3,7 +3,7 @@
  */
 
 /** How much it matters: 'note' needs nothing, 'look' should be looked at, 'serious' will spoil a fit or already lost readings. */
-export type Weight = 'note' | 'look' | 'serious';
+type Weight = 'note' | 'look' | 'serious';
 
 /** What kind of trouble a finding is about, as a closed set. */
 export type FindingKind =
@@ -28,6 +28,7 @@ export type FindingKind =
   | 'counter-resets'
   | 'short';
 
+/** One finding; where and how many beside the sentence, for programs. */
 export interface Finding {
   readonly kind: FindingKind;
   readonly weight: Weight;

@@ -26,7 +26,7 @@ export interface Format {
 }
 
 /** First lines of a block, whole ones where there are several. */
-export function headOf(block: Buffer): Buffer {
+function headOf(block: Buffer): Buffer {
   if (block.length <= HEAD_BYTES) return block;
   const end = block.lastIndexOf(10, HEAD_BYTES) + 1;
   return end > 0 ? block.subarray(0, end) : block;

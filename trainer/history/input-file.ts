@@ -103,7 +103,7 @@ function checkText(path: string, block: Buffer, firstLine: number): void {
 }
 
 /** Counts the line breaks of a block. */
-export function countLines(block: Uint8Array): number {
+function countLines(block: Uint8Array): number {
   let count = 0;
   for (let at = block.indexOf(NEWLINE); at >= 0; at = block.indexOf(NEWLINE, at + 1)) count++;
   return count;

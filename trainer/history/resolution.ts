@@ -11,6 +11,7 @@ import { channelsOf } from './channels.ts';
 import type { History } from './history.ts';
 import { quantiles } from './order-statistics.ts';
 
+/** Readings are offset + k × step for whole k. */
 export interface Lattice {
   readonly step: number;
   readonly offset: number;
