@@ -134,6 +134,7 @@ export class Fleet {
       ...['--gateway', `${start.site}-gateway`],
       ...['--clock', 'readings'],
       ...['--segment-ticks', String(start.segmentTicks)],
+      ...['--health-seconds', '2'],
       ...(start.bundle === null ? [] : ['--bundle', start.bundle]),
     ];
     this.gateways.set(start.site, this.processes.start(`gateway-${start.site}`, 'stillwell-gateway', args));

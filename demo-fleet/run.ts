@@ -14,6 +14,9 @@ import { real } from './stories/real.ts';
 import { season } from './stories/season.ts';
 import type { Story, StoryResult } from './stories/story.ts';
 
+/** Ctrl-C, or a request to end. */
+class Interrupted extends Error {}
+
 interface RunOptions {
   readonly story: string;
   readonly real: boolean;
@@ -99,8 +102,6 @@ async function run(options: RunOptions): Promise<number> {
     await end();
   }
 }
-
-class Interrupted extends Error {}
 
 function tell(options: RunOptions, story: Story, result: StoryResult, seconds: number): void {
   if (options.json) {

@@ -32,7 +32,7 @@ const DAY_MS = 86_400_000;
 const BEFORE_TICK_END_MS = 1000;
 /** Ticks sent ahead of the gateway's answer: enough to keep it busy, few enough that nothing queues up. */
 const WINDOW = 48;
-const PATIENCE_SECONDS = 40;
+const PATIENCE_SECONDS = 90;
 
 /** A site under way. */
 export class SiteRun {

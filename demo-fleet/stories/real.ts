@@ -26,15 +26,16 @@ import { inParallel } from '../processes.ts';
 import { formatColumns } from '../progress.ts';
 import { Scorer } from '../scores.ts';
 import { CADENCE_MS, DATA_NOTICE, type Mote, readMotes } from '../sensor-network.ts';
+import { LATENESS_TICKS } from '../site-files.ts';
 import { type SealedBundle, Workshop } from '../workshop.ts';
 import type { Story, StoryContext, StoryResult } from './story.ts';
 
 /** Readings of the learned part that are replayed first, to warm the filter. */
 const WARM_READINGS = 600;
 const SEGMENT_TICKS = 240;
-const WINDOW = 48;
-const PATIENCE_SECONDS = 40;
-const SETTLE_SECONDS = 30;
+const WINDOW = 4;
+const PATIENCE_SECONDS = 90;
+const SETTLE_SECONDS = 120;
 const UNSEEN = 'unseen';
 
 /** The story. */
@@ -93,7 +94,7 @@ async function play(context: StoryContext): Promise<StoryResult> {
   }
   await Promise.all(
     runs.map((run) =>
-      fleet.untilHealth(run.name, 'a gateway that serves', (h) => h.status === 'warming' || h.status === 'running', 30),
+      fleet.untilHealth(run.name, 'a gateway that serves', (h) => h.status === 'warming' || h.status === 'running', 120),
     ),
   );
   narrator.say(`broker ${fleet.broker.url}, one desk, ${runs.length} gateways running`);
@@ -125,7 +126,7 @@ function hear(run: MoteRun, message: ForecastsMessage): void {
   const path = new Float64Array(2 * 3 * MOTE_HORIZON);
   for (let i = 0; i < 2; i++) {
     const { median, lower, upper } = forecastPathOf(message, i);
-    [median, lower, upper].forEach((part, row) => path.set(part, (i * 3 + row) * MOTE_HORIZON));
+    for (const [row, part] of [median, lower, upper].entries()) path.set(part, (i * 3 + row) * MOTE_HORIZON);
   }
   run.scorer.addForecast(origin, origin - FIRST_TICK < learnCount(run.mote) - 1 ? 'warming up' : UNSEEN, path);
   run.play?.noteClosed(origin);
@@ -147,15 +148,18 @@ async function replay(fleet: Fleet, run: MoteRun): Promise<void> {
   await run.play.playUntil(FIRST_TICK + run.mote.temperature.length);
 }
 
-/** One rival's skill, by the trainer's own judge on the unseen part. */
+/** What the trainer's own judge says of the same bundle on the same unseen part. */
 interface Judged {
-  readonly name: string;
-  readonly rows: readonly (readonly string[])[];
+  readonly mse: number;
+  readonly coverage: number;
+  readonly rivals: Readonly<
+    Record<string, { readonly mse_standardised: number | null; readonly skill: number | null }>
+  >;
 }
 
-/** Has the trainer judge the same bundle on the same unseen part, which adds the rivals that have to be fitted. */
+/** Has the trainer judge the unseen part as well: that adds the rivals that have to be fitted first. */
 async function hindcast(folder: string, fleet: Fleet, run: MoteRun): Promise<Judged> {
-  const history = writeMoteHistory(
+  const whole = writeMoteHistory(
     join(folder, 'sites', run.name),
     run.mote,
     0,
@@ -167,9 +171,108 @@ async function hindcast(folder: string, fleet: Fleet, run: MoteRun): Promise<Jud
     'hindcast',
     ...['--bundle', run.bundle.file],
     ...['--site', run.siteFile],
-    ...['--history', history],
+    ...['--history', whole],
     ...['--from', from],
     '--json',
   ]);
-  return { name: run.name, rows: skillRows(run.name, JSON.parse(text)) };
+  const { average } = JSON.parse(text) as {
+    average: { mse_standardised: number; coverage: number; rivals: Judged['rivals'] };
+  };
+  return { mse: average.mse_standardised, coverage: average.coverage, rivals: average.rivals };
+}
+
+async function outcome(fleet: Fleet, runs: readonly MoteRun[], judged: readonly Judged[]): Promise<StoryResult> {
+  const status = await fleet.deskStatus();
+  const verdicts: Verdict[] = [];
+  const figures: Record<string, unknown>[] = [];
+  for (const [i, run] of runs.entries()) {
+    const deviations = run.bundle.bundle.channels.map((channel) => channel.scale);
+    const score = run.scorer.score(UNSEEN, deviations);
+    const archive = await readArchive(fleet.archiveFolder, run.name);
+    const names = describeMote(run.mote).channels.map((channel) => channel.name);
+    const last = archive.ticks[archive.ticks.length - 1];
+    const found = compareArchive(archive, names, run.said, run.playTick, last);
+    const desk = status.find((one) => one.site === run.name);
+    const unseen = run.mote.temperature.length - learnCount(run.mote);
+    const pairs = (unseen - MOTE_HORIZON - LATENESS_TICKS) * MOTE_HORIZON * 2;
+    verdicts.push(
+      expectBetween(run.name, 'every forecast of the unseen part came', score?.pairs ?? 0, [
+        pairs,
+        Number.POSITIVE_INFINITY,
+      ]),
+      expectExactly(
+        run.name,
+        'archive differs from the record in',
+        found.missing + found.different + found.invented,
+        0,
+      ),
+      expectBetween(run.name, 'archive reaches the last segment', found.ticks, [
+        run.said.length - SEGMENT_TICKS - LATENESS_TICKS - 1,
+        Number.POSITIVE_INFINITY,
+      ]),
+      expectExactly(
+        run.name,
+        'segments lost',
+        (fleet.segments.bySite.get(run.name)?.segments ?? 0) - (desk?.segments ?? 0),
+        0,
+      ),
+    );
+    figures.push({ site: run.name, score, judged: judged[i], archive: found, desk, bundleBytes: run.bundle.bytes });
+  }
+  return {
+    report: `${receivedTable(runs)}\n\n${judgedTable(runs, judged)}\n\n${DATA_NOTICE}`,
+    verdicts,
+    figures: { data: DATA_NOTICE, motes: figures },
+    lookAt: [
+      `broker          ${fleet.broker.url}`,
+      `live forecasts  npm run stillwell -- watch --broker ${fleet.broker.url} --site ${runs[0].name}`,
+    ],
+    linger: (signal) => new Promise((resolve) => signal.addEventListener('abort', () => resolve(), { once: true })),
+  };
+}
+
+const percent = (share: number | null): string => (share === null ? '-' : `${(100 * share).toFixed(1)} %`);
+
+function receivedTable(runs: readonly MoteRun[]): string {
+  const rows = runs.flatMap((run) => {
+    const score = run.scorer.score(
+      UNSEEN,
+      run.bundle.bundle.channels.map((channel) => channel.scale),
+    );
+    if (score === null) return [];
+    const rivals = score.rivalMse.map((mse) => percent(1 - score.mse / mse));
+    return [
+      [
+        run.name,
+        run.mote.isIndoor ? 'indoor' : 'outdoor',
+        String(score.pairs),
+        score.mse.toFixed(5),
+        ...rivals,
+        percent(score.coverage),
+      ],
+    ];
+  });
+  const heads = [
+    'site',
+    'where',
+    'pairs',
+    'error',
+    ...runs[0].scorer.rivals.map((name) => `against ${name}`),
+    'coverage',
+  ];
+  return (
+    'Unseen part, forecasts as received over MQTT, five minutes ahead, both signals. Error: squared, in units of the\n' +
+    `signal’s variance while learning. Skill: how much less of it than the rival; negative means the rival is better.\n${formatColumns(heads, rows)}`
+  );
+}
+
+function judgedTable(runs: readonly MoteRun[], judged: readonly Judged[]): string {
+  const names = [...new Set(judged.flatMap((one) => Object.keys(one.rivals)))];
+  const rows = runs.map((run, i) => [
+    run.name,
+    judged[i].mse.toFixed(5),
+    ...names.map((name) => percent(judged[i].rivals[name]?.skill ?? null)),
+    percent(judged[i].coverage),
+  ]);
+  return `The same by \`stillwell hindcast\`, with the rivals that are fitted:\n${formatColumns(['site', 'error', ...names, 'coverage'], rows)}`;
 }

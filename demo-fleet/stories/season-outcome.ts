@@ -20,7 +20,7 @@ const MAX_GATEWAY_MIB = 90;
 const COVERAGE = [0.82, 0.97] as const;
 const MAX_BITS = 8;
 const MAX_SECONDS = 180;
-const SETTLE_SECONDS = 30;
+const SETTLE_SECONDS = 120;
 /** Stretches scored, in order. */
 const LABELS = ['as learned', 'worn', 'refitted'] as const;
 

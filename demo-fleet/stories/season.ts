@@ -32,7 +32,7 @@ import type { Story, StoryContext, StoryResult } from './story.ts';
 
 /** Fits and refits under way at once: one a core of the smallest machine meant. */
 const FIT_WIDTH = 2;
-const START_SECONDS = 30;
+const START_SECONDS = 120;
 const LINGER_MS = 1000;
 
 /** The story. */
