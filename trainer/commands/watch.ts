@@ -37,7 +37,9 @@ async function watch(options: WatchCommandOptions): Promise<void> {
   let site: WatchedSite = { site: options.site, forecasts: new Map(), state: null, health: null };
   let changedMs = 0;
   const draw = (): void => {
-    const { rows = 24, columns = 80 } = process.stdout;
+    // A terminal that does not know its size says 0.
+    const rows = process.stdout.rows || 24;
+    const columns = process.stdout.columns || 80;
     // Home, then each line cleared to its end: redrawing in place does not flicker.
     const screen = view.screenText(site, wanted(site), Date.now(), rows, columns).replaceAll('\n', '\x1b[K\n');
     process.stdout.write(`\x1b[H${screen}\x1b[K\x1b[J`);

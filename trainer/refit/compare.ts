@@ -75,8 +75,18 @@ function meanCoverage(cast: Hindcast, signal: number): number {
 
 function shareSeen(result: FitResult, previous: OpenDocument, tickMs: number): number {
   const { fromTick, toTick } = result.judged;
-  const seenTo = Math.round(previous.bundle.provenance.lastMs / tickMs) + 1;
+  const seenTo = Math.max(Math.round(previous.bundle.provenance.lastMs / tickMs) + 1, calibratedTo(previous));
   return Math.max(0, Math.min(1, (seenTo - fromTick) / (toTick - fromTick)));
+}
+
+/** First tick after what the bounds were set on, as the options in the provenance say; 0 where they do not. */
+function calibratedTo({ bundle }: OpenDocument): number {
+  try {
+    const { calibrate } = JSON.parse(bundle.provenance.options) as { calibrate?: unknown };
+    return Array.isArray(calibrate) && Number.isSafeInteger(calibrate[1]) ? (calibrate[1] as number) : 0;
+  } catch {
+    return 0;
+  }
 }
 
 function sentenceOf(
