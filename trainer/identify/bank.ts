@@ -18,9 +18,12 @@ export interface Bank {
 const RESONATOR_PERIODS = [1, 3, 7] as const;
 const HARMONICS = 6;
 const SHORTEST_MEAN_TICKS = 1.5;
+/** Without a period, resonators an octave apart from here on, each remembering one turn: what swings by itself is caught. */
+const SHORTEST_TURN_TICKS = 4;
 /** Slowest mean, in periods or in horizons, whichever is longer. */
 const SLOWEST_MEAN_PERIODS = 8;
 const SLOWEST_MEAN_HORIZONS = 4;
+const SLOWEST_WITHOUT_PERIOD = 16;
 
 /**
  * The widest bank worth trying on a history.
@@ -33,22 +36,33 @@ const SLOWEST_MEAN_HORIZONS = 4;
  */
 export function designBank(periodTicks: number, horizon: number, learnTicks: number): Bank {
   const longest = learnTicks / 10;
-  const wanted = Math.max(SLOWEST_MEAN_PERIODS * periodTicks, SLOWEST_MEAN_HORIZONS * horizon, 16);
+  const horizons = periodTicks > 0 ? SLOWEST_MEAN_HORIZONS : SLOWEST_WITHOUT_PERIOD;
+  const wanted = Math.max(SLOWEST_MEAN_PERIODS * periodTicks, horizons * horizon, 16);
   const decays: number[] = [];
   for (let tau = SHORTEST_MEAN_TICKS; tau <= Math.min(wanted, longest); tau *= 2) decays.push(Math.exp(-1 / tau));
-  const resonators: [number, number][] = [];
+  const resonators: (readonly [number, number])[] = [];
+  if (periodTicks === 0) {
+    for (let period = SHORTEST_TURN_TICKS; period <= Math.min(wanted, longest); period *= 2) {
+      resonators.push(resonator(period, period, 1));
+    }
+  }
   if (periodTicks > 0) {
     for (const periods of RESONATOR_PERIODS) {
       const tau = periods * periodTicks;
       if (tau > longest && periods > 1) continue;
       for (let m = 1; m <= HARMONICS && 2 * m < periodTicks; m++) {
-        const radius = Math.exp(-1 / tau);
-        const angle = (2 * Math.PI * m) / periodTicks;
-        resonators.push([radius * Math.cos(angle), radius * Math.sin(angle)]);
+        resonators.push(resonator(tau, periodTicks, m));
       }
     }
   }
   return { decays, resonators, lags: [] };
+}
+
+/** Complex decay per tick of a resonator at the m-th harmonic of a period, memory tau. */
+function resonator(tau: number, periodTicks: number, m: number): readonly [number, number] {
+  const radius = Math.exp(-1 / tau);
+  const angle = (2 * Math.PI * m) / periodTicks;
+  return [radius * Math.cos(angle), radius * Math.sin(angle)];
 }
 
 /**

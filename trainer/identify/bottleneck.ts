@@ -17,17 +17,15 @@ export interface Bottleneck {
   readonly carried: Float64Array;
 }
 
-/** A share of the largest feature variance added before the factorisation, so that copies of a signal do no harm. */
-const FACTOR_RIDGE = 1e-9;
 /** Directions that carry less than this share of the first are noise of the arithmetic. */
-const LEAST_SHARE = 1e-7;
+const LEAST_SHARE = 1e-5;
 
 /**
  * All directions worth keeping.
  *
  * shapes  covariance (p × p) mean products of features, map (p × ny·steps), most the largest order of interest
  * units   standardised
- * throws  TrainError 'fit' if the covariance is not finite
+ * throws  TrainError 'fit' if the covariance is not positive definite
  * source  reduced-rank regression: Izenman, Journal of Multivariate Analysis 5 (1975), with the step weights as norm
  * cost    one symmetric eigendecomposition of min(p, ny·steps) and products of that size
  */
@@ -35,7 +33,7 @@ export function findDirections(covariance: Float64Array, map: Float64Array, layo
   const p = layout.channelCount * layout.featureCount;
   const width = layout.signalCount * layout.steps;
   const weighted = weightSteps(map, layout);
-  const factor = cholesky(withRidge(covariance, p), p);
+  const factor = cholesky(covariance, p);
   const spread = multiplyTransposed(factor, weighted, p, p, width);
   const isWide = width > p;
   const gram = isWide
@@ -101,13 +99,4 @@ export function stepWeight(step: number): number {
 
 function weightSteps(map: Float64Array, layout: Layout): Float64Array {
   return map.map((value, at) => value * stepWeight((at % layout.steps) + 1));
-}
-
-function withRidge(covariance: Float64Array, p: number): Float64Array {
-  const out = covariance.slice();
-  let largest = 0;
-  for (let f = 0; f < p; f++) largest = Math.max(largest, out[f * p + f]);
-  for (let f = 0; f < p; f++)
-    out[f * p + f] += FACTOR_RIDGE * (largest > 0 ? Math.max(out[f * p + f], largest * 1e-6) : 1);
-  return out;
 }

@@ -21,8 +21,12 @@ export interface Choice {
   readonly folds: number;
 }
 
-const OWN_PENALTIES = [0.01, 0.03, 0.1, 0.3, 1, 3] as const;
-const CROSS_PENALTIES = [1, 3, 10, 30] as const;
+const OWN_PENALTIES = [0.001, 0.01, 0.03, 0.1, 0.3, 1, 3] as const;
+/** A decade apart; the best one's neighbours half a decade off are tried after. */
+const CROSS_PENALTIES = [0.1, 1, 10] as const;
+const HALF_DECADE = Math.sqrt(10);
+/** Where the least of those is the best, decades below it are tried down to this: signals that are one thing seen twice. */
+const LEAST_CROSS = 1e-4;
 /** A smaller model within this share of the best is preferred. */
 const TIE = 0.002;
 /** A signal departs from the common penalty only for this gain, and takes the cross stage only for that one. */
@@ -155,30 +159,47 @@ function ownError(fold: Fold, layout: Layout, signal: number, chosen: Int32Array
   return Math.max(0, sum) / (origins * steps);
 }
 
+/** A fold ready for trying penalties of the cross stage. */
+interface CrossFold {
+  readonly judge: Moments;
+  readonly own: Float64Array;
+  readonly system: ReturnType<typeof crossSystem>;
+}
+
 /** One penalty for the cross stage likewise; a signal is left out of it where it does not gain. */
 function chooseCross(folds: readonly Fold[], layout: Layout, penalties: readonly number[]): (number | null)[] {
-  const { signalCount, steps } = layout;
-  const p = layout.channelCount * layout.featureCount;
   if (layout.channelCount === 1) return [null];
-  const alone: Float64Array[] = [];
-  const errors: Float64Array[][] = CROSS_PENALTIES.map(() => []);
-  for (const fold of folds) {
+  const ready = folds.map((fold): CrossFold => {
     const own = ownMap(fold.learn, layout, penalties);
-    alone.push(signalErrors(mapError(fold.judge, layout, own), steps));
-    const system = crossSystem(fold.learn, layout, own);
-    CROSS_PENALTIES.forEach((penalty, k) => {
-      const map = system.right.slice();
-      solveCholesky(cholesky(system.gram(penalty), p), p, map, signalCount * steps);
-      for (let at = 0; at < map.length; at++) map[at] += own[at];
-      errors[k].push(signalErrors(mapError(fold.judge, layout, map), steps));
-    });
-  }
-  const common = leastIndex(errors.map((perFold) => geometric(perFold.map(total))));
-  return Array.from({ length: signalCount }, (_, i) => {
-    const without = geometric(alone.map((signals) => signals[i]));
-    const joined = geometric(errors[common].map((signals) => signals[i]));
-    return joined < without * (1 - CROSS_GAIN) ? CROSS_PENALTIES[common] : null;
+    return { judge: fold.judge, own, system: crossSystem(fold.learn, layout, own) };
   });
+  const attempt = (penalty: number): { penalty: number; errors: Float64Array[]; mean: number } => {
+    const errors = ready.map((fold) => crossErrors(fold, layout, penalty));
+    return { penalty, errors, mean: geometric(errors.map(total)) };
+  };
+  const tried = CROSS_PENALTIES.map(attempt);
+  const best = (): (typeof tried)[number] => tried[leastIndex(tried.map(({ mean }) => mean))];
+  for (let least = CROSS_PENALTIES[0] / 10; best().penalty < 11 * least && least >= LEAST_CROSS; least /= 10) {
+    tried.push(attempt(least));
+  }
+  const coarse = best().penalty;
+  tried.push(attempt(coarse / HALF_DECADE), attempt(coarse * HALF_DECADE));
+  const common = best();
+  const alone = ready.map(({ judge, own }) => signalErrors(mapError(judge, layout, own), layout.steps));
+  return Array.from({ length: layout.signalCount }, (_, i) => {
+    const without = geometric(alone.map((signals) => signals[i]));
+    const joined = geometric(common.errors.map((signals) => signals[i]));
+    return joined < without * (1 - CROSS_GAIN) ? common.penalty : null;
+  });
+}
+
+/** (ny) errors of both stages on a fold's judge. */
+function crossErrors({ judge, own, system }: CrossFold, layout: Layout, penalty: number): Float64Array {
+  const p = layout.channelCount * layout.featureCount;
+  const map = system.right.slice();
+  solveCholesky(cholesky(system.gram(penalty), p), p, map, layout.signalCount * layout.steps);
+  for (let at = 0; at < map.length; at++) map[at] += own[at];
+  return signalErrors(mapError(judge, layout, map), layout.steps);
 }
 
 /** (ny) mean over the steps. */

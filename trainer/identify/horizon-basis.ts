@@ -10,7 +10,7 @@ import { type StateMoments, stepWeight } from './bottleneck.ts';
 import type { Layout } from './ridge.ts';
 
 /** A share of the trace added to the state's covariance before it is solved with. */
-const STATE_RIDGE = 1e-10;
+const STATE_RIDGE = 1e-9;
 
 /**
  * Full read-out of a state: the regression of the full map's forecast on it.

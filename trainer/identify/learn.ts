@@ -33,6 +33,9 @@ export interface LearnOutput {
 
 /** More states than this never paid within the byte limits met. */
 const MOST_DIRECTIONS = 96;
+/** Share by which each variance is raised, and the least share of the largest variance that counts as one. */
+const RAISED = 1e-9;
+const SILENT = 1e-6;
 
 /**
  * Learns.
@@ -91,8 +94,23 @@ function layoutOf(input: LearnInput, bank: Bank): Layout {
 
 function mapAndDirections(moments: Moments, layout: Layout, choice: Choice): Learned {
   const map = twoStageMap(moments, layout, choice.ownPenalty, choice.crossPenalty);
-  const covariance = moments.features.map((sum) => sum / moments.origins);
+  const covariance = steadyCovariance(moments, layout);
   return { covariance, map, layout, bottleneck: findDirections(covariance, map, layout, MOST_DIRECTIONS) };
+}
+
+/**
+ * Mean products of the features, each variance raised by a hair, so that copies of a signal and silent features leave it
+ * positive definite; whatever follows is then consistent with one and the same matrix.
+ */
+function steadyCovariance(moments: Moments, layout: Layout): Float64Array {
+  const p = layout.channelCount * layout.featureCount;
+  const covariance = moments.features.map((sum) => sum / moments.origins);
+  let largest = 0;
+  for (let f = 0; f < p; f++) largest = Math.max(largest, covariance[f * p + f]);
+  for (let f = 0; f < p; f++) {
+    covariance[f * p + f] += RAISED * (largest > 0 ? Math.max(covariance[f * p + f], SILENT * largest) : 1);
+  }
+  return covariance;
 }
 
 function gather(input: LearnInput, bank: Bank, blocks: readonly Block[]): Moments[] {

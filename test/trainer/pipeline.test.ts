@@ -1,0 +1,168 @@
+/** The whole fit: the same bytes for the same input, skill where there is something to know, plain refusals where not. */
+import { describe, expect, it } from 'vitest';
+import { bundleDigest, encodeBundle } from '../../protocol/index.ts';
+import { runProbe } from '../../runtime/filter/index.ts';
+import { TrainError } from '../../trainer/errors.ts';
+import type { Series } from '../../trainer/history/series.ts';
+import { FIT_DEFAULTS, type FitOptions, type FitResult, fit as fitHistory } from '../../trainer/pipeline.ts';
+import { gaussians } from '../support/gaussian.ts';
+import { hourlySite, seriesOf, wanderingDays } from '../support/history.ts';
+import { recurrence } from '../support/sample-bundle.ts';
+
+const names = ['level', 'flow', 'outdoor'];
+const site = hourlySite(names.slice(0, 2), 12, names.slice(2));
+const lattice = { step: 0.01, offset: 0 };
+
+const days = wanderingDays(3, 1500, 21);
+const series = seriesOf(names, days, 2);
+
+function run(of: Series, options: Partial<FitOptions> = {}, horizon = 12): Promise<FitResult> {
+  const inputs = of.names.slice(of.signalCount);
+  const forSite = hourlySite(of.names.slice(0, of.signalCount), horizon, inputs);
+  return fitHistory(
+    { series: of, site: forSite, survey: { note: 'none' }, lattices: of.names.map(() => lattice) },
+    { ...FIT_DEFAULTS, ...options },
+  );
+}
+
+async function refusal(of: Series, options: Partial<FitOptions> = {}, horizon = 12): Promise<TrainError> {
+  try {
+    await run(of, options, horizon);
+  } catch (error) {
+    if (error instanceof TrainError) return error;
+    throw error;
+  }
+  throw new Error('expected a refusal, got a fit');
+}
+
+const replaced = (channel: number, change: (value: number, t: number) => number): Series =>
+  seriesOf(
+    names,
+    days.map((y, c) => (c === channel ? y.map(change) : y)),
+    2,
+  );
+
+describe('fit', () => {
+  it('beats the obvious guesses where there is something to know, within the bytes', async () => {
+    const result = await run(series);
+    expect(result.verdicts.hasSkill).toBe(true);
+    expect(result.verdicts.meanSkill).toBeGreaterThan(0.2);
+    expect(result.document.length).toBeLessThan(24 * 1024);
+    expect(result.audit.ratio).toBeLessThan(1.01);
+    expect(result.chosen.periodTicks).toBe(24);
+    for (const verdict of result.verdicts.signals) {
+      // 290 origins, neighbours alike: six points are two standard errors or so.
+      expect(Math.abs(verdict.coverage - 0.9)).toBeLessThan(0.06);
+    }
+    expect(Array.from(encodeBundle(result.bundle))).toEqual(Array.from(result.document));
+    expect(runProbe(result.model, 1, 96).last).toEqual(result.bundle.probe.last);
+  });
+
+  it('gives the same bytes for the same input and seed, others for another seed', async () => {
+    const [first, second, third] = [await run(series), await run(series), await run(series, { seed: 2 })];
+    expect(Buffer.from(bundleDigest(first.document)).equals(bundleDigest(second.document))).toBe(true);
+    expect(Buffer.from(first.document).equals(third.document)).toBe(false);
+  });
+
+  it('keeps to a smaller byte limit, seal included', async () => {
+    const result = await run(series, { maxBytes: 6000 });
+    expect(result.document.length).toBeLessThanOrEqual(6000 - 56 - 4 * 72);
+    expect(result.verdicts.hasSkill).toBe(true);
+  });
+
+  it('shows no skill on a plain random walk, and says so', async () => {
+    const next = recurrence(13);
+    const normal = gaussians(() => next() / 2 ** 32);
+    let level = 0;
+    const walk = Float64Array.from({ length: 3000 }, () => {
+      level += normal();
+      return Math.round(100 * level) / 100;
+    });
+    const result = await run(seriesOf(['walk'], [walk]));
+    expect(result.verdicts.meanSkill).toBeLessThan(0.03);
+    if (!result.verdicts.hasSkill) expect(result.verdicts.sentence).toMatch(/no skill/);
+  });
+
+  it('learns through gaps, spikes and a level no one believes', async () => {
+    const next = recurrence(17);
+    const torn = replaced(0, (value, t) => {
+      if (next() < 2 ** 32 * 0.2) return Number.NaN;
+      if (t > 400 && t < 480) return Number.NaN;
+      return t === 700 || t === 1350 ? 1e12 : value;
+    });
+    const clean = await run(series);
+    const result = await run(torn);
+    expect(result.verdicts.hasSkill).toBe(true);
+    expect(result.warnings.join(' ')).toMatch(/level: 2 readings lie outside/);
+    // The spikes would move mean and scale by 1e9.
+    expect(Math.abs(result.model.scale[0]! / clean.model.scale[0]! - 1)).toBeLessThan(0.05);
+    expect(result.verdicts.signals[0]!.skill).toBeGreaterThan(0.7 * clean.verdicts.signals[0]!.skill);
+  });
+
+  it('keeps one constant signal, with a note, and forecasts its value', async () => {
+    const result = await run(replaced(1, () => 7.25));
+    expect(result.warnings.join(' ')).toMatch(/flow keeps one value/);
+    expect(result.hindcast.mse[12 + 5]).toBe(0);
+  });
+
+  it('stands copies of one signal and units a billion apart', async () => {
+    const copies = seriesOf(names, [days[0]!, days[0]!, days[0]!.map((value) => value * 1e9)], 2);
+    const result = await run(copies);
+    expect(result.verdicts.hasSkill).toBe(true);
+    expect(result.model.bottleneck.every((value) => Number.isFinite(value))).toBe(true);
+  });
+
+  it('learns once more from all of it when asked, and keeps what was judged', async () => {
+    const [parted, whole] = [await run(series), await run(series, { useAll: true })];
+    expect(whole.bundle.judge).toEqual(parted.bundle.judge);
+    expect(whole.bundle.linear.bottleneck.data).not.toEqual(parted.bundle.linear.bottleneck.data);
+    expect(whole.bundle.provenance.lastMs).toBe((series.firstTick + series.ticks - 1) * series.tickMs);
+  });
+});
+
+describe('refusals', () => {
+  it('names a signal without readings', async () => {
+    const error = await refusal(replaced(1, () => Number.NaN));
+    expect(error.code).toBe('history');
+    expect(error.message).toMatch(/Signal flow: expected at least 16 readings .* got 0/);
+  });
+
+  it('refuses a history in which nothing moves', async () => {
+    const still = seriesOf(['a', 'b'], [new Float64Array(800).fill(1), new Float64Array(800).fill(2)]);
+    expect((await refusal(still)).message).toMatch(/Every signal \(a, b\) keeps one value/);
+  });
+
+  it('says how many ticks there are and how many are needed', async () => {
+    const short = seriesOf(
+      names,
+      days.map((y) => y.slice(0, 150)),
+      2,
+    );
+    expect((await refusal(short)).message).toMatch(
+      /holds 150 ticks of 3600 s; expected at least 227 for a horizon of 12/,
+    );
+  });
+
+  it('refuses a horizon longer than the history', async () => {
+    const short = seriesOf(
+      names,
+      days.map((y) => y.slice(0, 150)),
+      2,
+    );
+    expect((await refusal(short, {}, 150)).message).toMatch(
+      /horizon of 150 ticks is longer than the history of 150 ticks/,
+    );
+  });
+
+  it('refuses options outside their ranges', async () => {
+    expect((await refusal(series, { learnShare: 0.8, calibrateShare: 0.2 })).message).toMatch(/less than 1/);
+    expect((await refusal(series, { maxBytes: 100 })).message).toMatch(/--max-bytes: expected 2048 to 65536/);
+    expect((await refusal(series, { maxBytes: 2100 })).message).toMatch(
+      /--max-bytes: expected room for at least one state/,
+    );
+  });
+});
+
+it('the site of these tests has an input', () => {
+  expect(site.inputs.map((input) => input.name)).toEqual(['outdoor']);
+});
