@@ -20,16 +20,6 @@ const unpackr = new Unpackr({
   copyBuffers: true,
 });
 
-/** The library gives Buffers that may share memory; plain copies leave. Depth is bounded by the scan. */
-const ownBytes = (value: unknown): unknown => {
-  if (value instanceof Uint8Array) return Uint8Array.from(value);
-  if (Array.isArray(value)) return value.map(ownBytes);
-  if (typeof value === 'object' && value !== null) {
-    for (const [key, inner] of Object.entries(value)) (value as Record<string, unknown>)[key] = ownBytes(inner);
-  }
-  return value;
-};
-
 /**
  * Writes one plain value (null, booleans, finite numbers, text, Uint8Array, arrays, string-keyed maps) as MessagePack.
  * Equal values give equal bytes whatever the order of their keys.
@@ -49,8 +39,8 @@ export const encode = (value: unknown): Uint8Array => packValue(value);
 export const decode = (bytes: Uint8Array, limits: Partial<ScanLimits> = {}, form: ScanForm = 'own'): unknown => {
   scanMessagePack(bytes, { ...DEFAULT_LIMITS, ...limits }, form);
   try {
-    // A view of its own: the library hangs a property on the object it reads from.
-    return ownBytes(unpackr.unpack(new Uint8Array(bytes.buffer, bytes.byteOffset, bytes.byteLength)));
+    // A plain view of its own: the library hangs a property on the object it reads from, and answers a Buffer with Buffers.
+    return unpackr.unpack(new Uint8Array(bytes.buffer, bytes.byteOffset, bytes.byteLength));
   } catch (cause) {
     throw new ProtocolError('decode', `MessagePack data of ${bytes.length} bytes passed the scan but not the decoder`, {
       cause,

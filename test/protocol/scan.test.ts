@@ -119,8 +119,11 @@ describe('writing', () => {
     expect(refusal.message).toContain(message);
   });
 
-  test('bytes come back as copies of their own', () => {
-    const source = encode({ raw: Uint8Array.of(1, 2, 3) });
+  test.each([
+    ['an array of bytes', (bytes: Uint8Array) => bytes],
+    ['a Buffer', (bytes: Uint8Array) => Buffer.from(bytes)],
+  ])('bytes out of %s come back as copies of their own', (_, from) => {
+    const source = from(encode({ raw: Uint8Array.of(1, 2, 3) }));
     const { raw } = decode(source) as { raw: Uint8Array };
     expect(Object.getPrototypeOf(raw)).toBe(Uint8Array.prototype);
     expect(raw.buffer.byteLength).toBe(3);
