@@ -43,6 +43,8 @@ export class Collector {
   #queue: Arrival[] = [];
   #queueBytes = 0;
   #dropped = 0;
+  /** Receipts that went out and are not marked so in the store yet. */
+  readonly #receipted: SegmentName[] = [];
   /** The pump at work, or the last one done; never rejects. */
   #pump: Promise<void> = Promise.resolve();
   #isPumping = false;
@@ -75,6 +77,7 @@ export class Collector {
   /** Looks through the bundle folder and decodes what waited for what it finds; at start also all else that waits. */
   refresh(isStart = false): Promise<void> {
     const look = async (): Promise<void> => {
+      await this.#markReceipted();
       const { added, refused } = await this.#options.shelf.refresh();
       for (const digest of added) this.#tell({ event: 'bundle', digest });
       for (const one of refused) this.#tell({ event: 'bundle-refused', ...one });
@@ -100,6 +103,7 @@ export class Collector {
   async settle(): Promise<void> {
     do await this.#pump;
     while (this.#isPumping || this.#queue.length > 0);
+    await this.#markReceipted();
   }
 
   #start(): void {
@@ -159,24 +163,29 @@ export class Collector {
     try {
       const payload = receiptMessage({ site, gateway, stream: Uint8Array.from(Buffer.from(stream, 'hex')), segments });
       await this.#options.publish(topicsOf(this.#options.root, site).receipts, payload);
-      await this.#markReceipted(names);
+      this.#receipted.push(...names);
       this.#tell({ event: 'receipt', site, gateway, segments: segments.length });
     } catch (error) {
       this.#tell({ event: 'receipt-lost', site, message: (error as Error).message });
     }
   }
 
-  async #markReceipted(names: readonly SegmentName[]): Promise<void> {
-    const { site, gateway, stream } = names[0]!;
-    const numbers = names.map((name) => name.number);
-    await this.#options.store.db
-      .updateTable('segments')
-      .set({ receipted: 1 })
-      .where('site', '=', site)
-      .where('gateway', '=', gateway)
-      .where('stream', '=', stream)
-      .where('number', 'in', numbers)
-      .execute();
+  /** Remembers which receipts went out. Late is early enough: a receipt given twice does no harm. */
+  async #markReceipted(): Promise<void> {
+    const names = this.#receipted.splice(0);
+    if (names.length === 0) return;
+    await this.#options.store.db.transaction().execute(async (db) => {
+      for (const { site, gateway, stream, number } of names) {
+        await db
+          .updateTable('segments')
+          .set({ receipted: 1 })
+          .where('site', '=', site)
+          .where('gateway', '=', gateway)
+          .where('stream', '=', stream)
+          .where('number', '=', number)
+          .execute();
+      }
+    });
   }
 
   async #decode(outcomes: readonly Outcome[]): Promise<void> {
