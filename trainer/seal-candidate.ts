@@ -15,6 +15,7 @@ import {
 import { hex, type OpenDocument, openDocument, probeDifference } from './bundle-file.ts';
 import { TrainError } from './errors.ts';
 
+/** Numbers of the seal, and what a person allows. */
 export interface SealOptions extends SealNumbers {
   /** Why a person seals without skill; stands in the document afterwards. Null: do not. */
   readonly override: string | null;

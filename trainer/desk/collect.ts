@@ -20,6 +20,7 @@ export type DeskEvent =
   | { readonly event: 'not-kept'; readonly dropped: number; readonly message: string }
   | { readonly event: 'failed'; readonly message: string };
 
+/** What a collector is joined to. */
 export interface CollectorOptions {
   readonly store: Store;
   readonly shelf: Shelf;

@@ -5,6 +5,7 @@
 import { type HealthMessage, parseHealthMessage, topicsOf } from '@stillwell/protocol';
 import { brokerError, clientIdFor, connectBroker } from '../broker.ts';
 
+/** One bundle for one site, and how long to wait for the word. */
 export interface RollOptions {
   readonly broker: string;
   readonly root: string;

@@ -14,6 +14,7 @@ import { openStore, readMeta, type Store, writeMeta } from './store/open.ts';
 /** What a desk tells, with its own comings and goings. */
 export type RunEvent = DeskEvent | { readonly event: 'connection'; readonly state: string; readonly detail: string };
 
+/** Where a desk keeps, listens and tells. */
 export interface DeskOptions {
   readonly data: string;
   readonly broker: string;

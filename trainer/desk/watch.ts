@@ -12,6 +12,7 @@ import {
 import { brokerError, clientIdFor, connectBroker } from '../broker.ts';
 import type { WatchedSite } from './watch-view.ts';
 
+/** Whom to follow, and whom to tell. */
 export interface WatchOptions {
   readonly broker: string;
   readonly root: string;

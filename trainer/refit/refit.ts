@@ -11,6 +11,7 @@ import { type FitOptions, type FitResult, fit } from '../pipeline.ts';
 import { type Absorbed, absorb } from './absorb.ts';
 import { type Comparison, compare } from './compare.ts';
 
+/** What a refit works on. */
 export interface RefitInput {
   readonly archive: Archive;
   /** Files of the first fit, read; null where the archive stands alone. */

@@ -34,7 +34,8 @@ export function lockFolder(folder: string): () => void {
     if (isAlive(holder)) {
       throw new TrainError(
         'archive',
-        `${folder} is in use by another desk (process ${holder}); stop that one first, or give another --data folder`,
+        `${folder} is in use by another desk (process ${holder}); stop that one first, or give another --data ` +
+          `folder; if process ${holder} is no desk, remove ${path}`,
       );
     }
     rmSync(path, { force: true });
