@@ -59,7 +59,7 @@ async function runDesk(options: DeskCommandOptions, command: Command): Promise<v
   const desk = await startDesk({ data: options.data, broker: options.broker, root: options.root, bundles, onEvent });
   if (!options.json) draw.say(`desk: collecting ${options.root}/+/segments into ${options.data}`);
   await stopped;
-  draw.end();
+  if (!options.json) draw.end();
   await desk.stop();
 }
 
