@@ -1,1 +1,4 @@
 export { type Archive, type ArchivedChannel, readArchive } from './desk/archive.ts';
+export { loadHistory } from './history/load.ts';
+export { fitWindowRidge } from './judge/window-ridge.ts';
+export { FIT_DEFAULTS, type FitResult, fit } from './pipeline.ts';

@@ -27,7 +27,7 @@ const CROSS_PENALTIES = [0.1, 1, 10] as const;
 const HALF_DECADE = Math.sqrt(10);
 /** Where the least of those is the best, decades below it are tried down to this: signals that are one thing seen twice. */
 const LEAST_CROSS = 1e-4;
-/** A smaller model within this share of the best is preferred. */
+/** A smaller bank, or a heavier penalty of the own stage, within this share of the best is preferred. */
 const TIE = 0.002;
 /** A signal departs from the common penalty only for this gain, and takes the cross stage only for that one. */
 const OWN_GAIN = 0.02;
@@ -127,7 +127,8 @@ function chooseOwn(folds: readonly Fold[], layout: Layout): { penalties: number[
       ),
     ),
   );
-  const common = leastIndex(errors.map((perFold) => geometric(perFold.map(total))));
+  const means = errors.map((perFold) => geometric(perFold.map(total)));
+  const common = means.findLastIndex((mean) => mean <= Math.min(...means) * (1 + TIE));
   const picked = Array.from({ length: layout.signalCount }, (_, i) => {
     const own = errors.map((perFold) => geometric(perFold.map((signals) => signals[i])));
     const best = leastIndex(own);

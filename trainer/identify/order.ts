@@ -20,8 +20,10 @@ export interface Size {
 
 /** Shares of the byte limit tried, from small to the whole. */
 const SHARES = [0.15, 0.3, 0.5, 0.75, 1] as const;
+/** Sizes that fill the bytes and are judged on unseen readings; one alone at smaller shares. */
+const FINALISTS = 5;
 /** Bases tried; a basis of more curves than steps has no use. */
-const BASES = [1, 2, 3, 4, 6, 8, 10, 12, 14, 16, 20, 24] as const;
+const BASES = [1, 2, 3, 4, 5, 6, 7, 8, 9, 10, 11, 12, 13, 14, 15, 16, 18, 20, 22, 24] as const;
 /** A smaller size is preferred where its error is within this share of the best … */
 const TIE = 0.001;
 /** … and it either gives up less than this share of the full map's forecast, or beats the largest by that gain. */
@@ -60,21 +62,25 @@ export function chooseSize(learned: Learned, judge: Moments, tensorBytes: number
   const picked = pickMoments(judge, layout, all, steps);
   const trial = { ...layout, steps: steps.length };
   const energies = energiesOf(learned);
-  const sizes = SHARES.map((share) => frontier(learned, energies, share * tensorBytes)).filter((size) => size !== null);
+  const sizes = SHARES.flatMap((share) =>
+    frontier(learned, energies, share * tensorBytes, share === 1 ? FINALISTS : 1),
+  );
   if (sizes.length === 0) return { order: 1, basisCount: 1 };
   const errors = sizes.map((size) => {
     const factors = atSteps(floatFactors(learned, size.order, size.basisCount), steps);
     return mapError(picked, trial, mapOf(factors, trial)).reduce((sum, value) => sum + value, 0);
   });
   const best = Math.min(...errors);
-  const largest = sizes.length - 1;
+  const finalists = errors.slice(-FINALISTS);
+  const largest = errors.length - finalists.length + finalists.indexOf(Math.min(...finalists));
   const total = sumFrom(energies.directions, 0);
   const good = sizes.findIndex((size, at) => {
+    if (at >= errors.length - finalists.length) return at === largest;
     const isSmallLoss = lostEnergy(energies, size) < lostEnergy(energies, sizes[largest]) + LOST_SHARE * total;
     const isBetter = errors[at] < errors[largest] * (1 - CLEAR_GAIN);
     return errors[at] <= best * (1 + TIE) && (isSmallLoss || isBetter);
   });
-  return sizes[good === -1 ? largest : good];
+  return sizes[good];
 }
 
 /** Energy of the weighted forecast that each direction and each curve carries. */
@@ -91,21 +97,16 @@ function energiesOf(learned: Learned): Energies {
   return { directions: bottleneck.carried.map((sd) => sd * sd), curves: energy };
 }
 
-/** The size within the bytes that loses least of the full map's weighted forecast; null if nothing fits. */
-function frontier(learned: Learned, energies: Energies, bytes: number): Size | null {
-  let best: Size | null = null;
-  let least = Number.POSITIVE_INFINITY;
+/** The sizes within the bytes that lose least of the full map's weighted forecast, at most `count`, the best first. */
+function frontier(learned: Learned, energies: Energies, bytes: number, count: number): Size[] {
+  const sizes: Size[] = [];
   for (const basisCount of BASES) {
     if (basisCount > learned.layout.steps) break;
     let order = energies.directions.length;
     while (order > 0 && sizeBytes({ order, basisCount }, learned) > bytes) order--;
-    if (order === 0) break;
-    const lost = lostEnergy(energies, { order, basisCount });
-    if (lost >= least) continue;
-    least = lost;
-    best = { order, basisCount };
+    if (order > 0) sizes.push({ order, basisCount });
   }
-  return best;
+  return sizes.sort((a, b) => lostEnergy(energies, a) - lostEnergy(energies, b)).slice(0, count);
 }
 
 function lostEnergy(energies: Energies, size: Size): number {

@@ -8,6 +8,9 @@ import { meanOf, skillScore } from './scores.ts';
 /** Rivals that anyone would guess; the gate asks for skill over these. The window ridge is reported beside them. */
 const SIMPLE_RIVALS: readonly string[] = ['persistence', 'seasonal persistence', 'drift'];
 
+/** Worse than this is all one: the sentence says a hundredfold. */
+const MOST_WORSE = 99;
+
 /** The judge's word on one signal. */
 export interface Verdict {
   readonly signal: string;
@@ -105,9 +108,9 @@ function signalSentence(verdict: Omit<Verdict, 'sentence'>, horizon: number, nom
   const { signal, skill, bestRival, coverage } = verdict;
   if (Number.isNaN(skill)) return `${signal}: no readings in the judged part, so nothing is known of its skill.`;
   const over = horizon === 1 ? 'one step ahead' : `over ${horizon} steps`;
-  const bounds = `${percent(coverage)} of readings inside the ${percent(nominal)} bounds`;
+  const bounds = `${percent(coverage)} inside the ${percent(nominal)} bounds`;
   if (skill > 0) return `${signal}: squared error ${percent(skill)} below ${bestRival} ${over}; ${bounds}.`;
-  return `${signal}: no better than ${bestRival} ${over} (squared error ${percent(-skill)} above); do not rely on it; ${bounds}.`;
+  return `${signal}: no better than ${bestRival} ${over} (squared error ${percent(Math.min(-skill, MOST_WORSE))} above); ${bounds}.`;
 }
 
 function wholeSentence(signals: number, better: number, meanSkill: number): string {
