@@ -19,6 +19,7 @@ const CLIP = 20;
 /** Least share of a residual's variance taken to be its own. */
 const OWN_SHARE = 1e-3;
 
+/** Regression of each channel's residual on the others' at this tick and all of them at the last, kept up to date by moments. */
 export class CrossRegression {
   readonly #count: number;
   readonly #size: number;

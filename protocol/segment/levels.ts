@@ -11,6 +11,7 @@ const OVERALL_SHARE = 1;
 /** What is left of every overall count when a new value comes into a full table. */
 const FADE = 0.98;
 
+/** Counts of which level followed which, for channels that only ever show a few. */
 export class LevelTable {
   /** In no order. */
   readonly #levels = new Float64Array(MAX_LEVELS);

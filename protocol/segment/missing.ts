@@ -15,6 +15,7 @@ const PRIOR_COUNT = 8;
 const MOST_COUNT = 128;
 const LEAST = 8;
 
+/** Adaptive probability that a channel is missing, by whether it and its neighbour were. */
 export class MissingModel {
   readonly #p = Uint16Array.from(FIRST, (p) => p * ONE);
   readonly #counts = new Uint8Array(FIRST.length).fill(PRIOR_COUNT);

@@ -64,6 +64,7 @@ const MOST_SCALE = 2 ** 41;
 /** The last value errs somewhat more than the forecast, or there would be no point in one. */
 const LAST_SCALE = 1.25;
 
+/** The mixture of predictors of one channel: its weights, widths and tables, moved alike by coder and decoder. */
 export class Predictors {
   /** Two sets, by whether the value before was a repeat: machines at rest are another plant than machines at work. */
   readonly #weightSets = [Float64Array.from(FIRST_WEIGHTS), Float64Array.from(FIRST_WEIGHTS)] as const;

@@ -8,6 +8,7 @@ import { readSegmentParts, type SegmentHead, stateCheck } from './header.ts';
 import { segmentError } from './limits.ts';
 import { TickModel } from './tick-model.ts';
 
+/** Reads a segment back, tick by tick, from the forecasts that its writer was given. */
 export class SegmentReader {
   readonly head: SegmentHead;
   readonly corrections: readonly Correction[];

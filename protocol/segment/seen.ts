@@ -9,6 +9,7 @@
 /** Values kept; a channel with more keeps its first. */
 const MAX_SEEN = 1024;
 
+/** The distinct values that a channel has shown, and the stretch of the line that belongs to each. */
 export class SeenValues {
   /** Ascending. */
   readonly #values = new Float64Array(MAX_SEEN);

@@ -13,6 +13,7 @@ const NO_NEIGHBOUR = 2;
 /** Forecasts further out than any index are held here. */
 const MOST_FORECAST = 2 * MAX_INDEX;
 
+/** Codes one tick over all channels: the mask, then each reading by its predictors and its neighbours' residuals. */
 export class TickModel {
   readonly #predictors: Predictors[] = [];
   readonly #missing: MissingModel[] = [];

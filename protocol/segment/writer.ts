@@ -15,6 +15,7 @@ export interface SegmentOpening extends SegmentHeadFields {
   readonly residualScaleSteps: Float64Array;
 }
 
+/** Writes a segment, tick by tick; `finish` closes it. */
 export class SegmentWriter {
   readonly #fields: SegmentOpening;
   readonly #encoder = new BitEncoder();

@@ -45,6 +45,7 @@ export interface Hindcast {
   readonly readings: readonly Float64Array[];
 }
 
+/** One whole path kept for plots: origin and (ny × H) arrays in `unit`. */
 export interface HindcastPath {
   readonly originMs: number;
   readonly median: Float64Array;
