@@ -231,6 +231,8 @@ class LastingConnection implements Connection {
       reconnectPeriod: 0,
       resubscribe: false,
       queueQoSZero: false,
+      // Otherwise the library keeps a buffer for each of the 65,536 numbers a header may hold: 10 MB for nothing.
+      writeCache: false,
       messageIdProvider: new UniqueMessageIdProvider(),
       ...(username === null ? {} : { username }),
       ...(password === null ? {} : { password }),
