@@ -51,19 +51,29 @@ interface Fold {
  */
 export function choose(groups: readonly Moments[], bank: Bank, layout: Layout): Choice {
   const steps = trialSteps(layout.steps);
-  const candidates = banks(bank).map((candidate) => {
-    const trial = { ...layout, featureCount: candidate.kept.length, steps: steps.length };
-    const folds = makeFolds(groups.map((moments) => pickMoments(moments, layout, candidate.kept, steps)));
-    return { ...candidate, trial, folds, own: chooseOwn(folds, trial) };
-  });
+  const all = Array.from({ length: layout.featureCount }, (_, f) => f);
+  const wide = { ...layout, steps: steps.length };
+  const folds = makeFolds(groups.map((moments) => pickMoments(moments, layout, all, steps)));
+  const candidates = banks(bank).map((candidate) => ({ ...candidate, own: chooseOwn(folds, wide, candidate.kept) }));
   const best = Math.min(...candidates.map((candidate) => candidate.own.error));
-  const picked = candidates.find((candidate) => candidate.own.error <= best * (1 + TIE)) ?? candidates[0];
+  const { kept, own, ...picked } = candidates.find(({ own: { error } }) => error <= best * (1 + TIE)) ?? candidates[0];
+  const trial = { ...wide, featureCount: kept.length };
+  const narrow = (moments: Moments): Moments =>
+    kept.length === all.length
+      ? moments
+      : pickMoments(
+          moments,
+          wide,
+          kept,
+          Array.from({ length: wide.steps }, (_, k) => k + 1),
+        );
+  const crossFolds = folds.map((fold) => ({ learn: narrow(fold.learn), judge: narrow(fold.judge) }));
   return {
     bank: picked.bank,
-    kept: picked.kept,
-    ownPenalty: picked.own.penalties,
-    crossPenalty: chooseCross(picked.folds, picked.trial, picked.own.penalties),
-    folds: picked.folds.length,
+    kept,
+    ownPenalty: own.penalties,
+    crossPenalty: chooseCross(crossFolds, trial, own.penalties),
+    folds: folds.length,
   };
 }
 
@@ -119,12 +129,17 @@ function banks(bank: Bank): { readonly bank: Bank; readonly kept: readonly numbe
  * another; a signal departs from it only for a clear gain of its own, since a choice for each alone follows the noise of
  * the folds.
  */
-function chooseOwn(folds: readonly Fold[], layout: Layout): { penalties: number[]; error: number } {
+function chooseOwn(
+  folds: readonly Fold[],
+  layout: Layout,
+  kept: readonly number[],
+): { penalties: number[]; error: number } {
+  const chosenOf = Array.from({ length: layout.signalCount }, (_, i) =>
+    ownFeatures(layout, i).filter((f) => kept.includes(f % layout.featureCount)),
+  );
   const errors = OWN_PENALTIES.map((penalty) =>
     folds.map((fold) =>
-      Float64Array.from({ length: layout.signalCount }, (_, i) =>
-        ownError(fold, layout, i, ownFeatures(layout, i), penalty),
-      ),
+      Float64Array.from({ length: layout.signalCount }, (_, i) => ownError(fold, layout, i, chosenOf[i], penalty)),
     ),
   );
   const means = errors.map((perFold) => geometric(perFold.map(total)));
