@@ -53,6 +53,8 @@ export interface FleetOptions {
   readonly onUnexpectedEnd: (name: string, detail: string) => void;
 }
 
+/** As on a small box: a young generation of one MiB instead of sixteen. */
+const SMALL_BOX = ['--max-semi-space-size=1'];
 const CONNECT_TIMEOUT_MS = 15_000;
 
 /** Broker, desk and gateways of one demo run. */
@@ -137,7 +139,7 @@ export class Fleet {
       ...['--health-seconds', '2'],
       ...(start.bundle === null ? [] : ['--bundle', start.bundle]),
     ];
-    this.gateways.set(start.site, this.processes.start(`gateway-${start.site}`, 'stillwell-gateway', args));
+    this.gateways.set(start.site, this.processes.start(`gateway-${start.site}`, 'stillwell-gateway', args, SMALL_BOX));
   }
 
   /** Cuts a gateway's power. */

@@ -30,8 +30,8 @@ export interface SitePlan {
 const DAY_MS = 86_400_000;
 /** Readings are taken in the last second of their tick. */
 const BEFORE_TICK_END_MS = 1000;
-/** Ticks sent ahead of the gateway's answer: enough to keep it busy, few enough that nothing queues up. */
-const WINDOW = 48;
+/** Ticks sent ahead of the gateway's answer: enough to keep it busy, few enough for a forecast every few ticks. */
+const WINDOW = 24;
 const PATIENCE_SECONDS = 90;
 
 /** A site under way. */

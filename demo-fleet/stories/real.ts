@@ -36,6 +36,7 @@ const SEGMENT_TICKS = 240;
 const WINDOW = 4;
 const PATIENCE_SECONDS = 90;
 const SETTLE_SECONDS = 120;
+const LEAST_FORECAST_SHARE = 0.25;
 const UNSEEN = 'unseen';
 
 /** The story. */
@@ -94,7 +95,12 @@ async function play(context: StoryContext): Promise<StoryResult> {
   }
   await Promise.all(
     runs.map((run) =>
-      fleet.untilHealth(run.name, 'a gateway that serves', (h) => h.status === 'warming' || h.status === 'running', 120),
+      fleet.untilHealth(
+        run.name,
+        'a gateway that serves',
+        (h) => h.status === 'warming' || h.status === 'running',
+        120,
+      ),
     ),
   );
   narrator.say(`broker ${fleet.broker.url}, one desk, ${runs.length} gateways running`);
@@ -194,9 +200,10 @@ async function outcome(fleet: Fleet, runs: readonly MoteRun[], judged: readonly 
     const found = compareArchive(archive, names, run.said, run.playTick, last);
     const desk = status.find((one) => one.site === run.name);
     const unseen = run.mote.temperature.length - learnCount(run.mote);
-    const pairs = (unseen - MOTE_HORIZON - LATENESS_TICKS) * MOTE_HORIZON * 2;
+    // A gateway that closes several ticks in one go publishes the forecast of the last of them.
+    const pairs = (unseen - MOTE_HORIZON - LATENESS_TICKS) * MOTE_HORIZON * 2 * LEAST_FORECAST_SHARE;
     verdicts.push(
-      expectBetween(run.name, 'every forecast of the unseen part came', score?.pairs ?? 0, [
+      expectBetween(run.name, 'forecasts came for a quarter of the unseen origins or more', score?.pairs ?? 0, [
         pairs,
         Number.POSITIVE_INFINITY,
       ]),

@@ -7,7 +7,7 @@ import type { LogHabit } from '../history-files.ts';
 /** A Monday; the zones of the sites have no clock changes. */
 export const PLAY_MS = Date.UTC(2025, 3, 28);
 export const HISTORY_DAYS = 24;
-export const DEFAULT_DAYS = 5;
+export const DEFAULT_DAYS = 4;
 /** How the sites' logs are kept, in the order of the sites. */
 export const HABITS: readonly LogHabit[] = ['wide-utc', 'long', 'wide-utc', 'wide-local', 'wide-utc', 'long'];
 /** How rough the way from the sensors is. */
@@ -20,7 +20,8 @@ export const ROUGH: Roughness = {
 };
 /** Every how many-th segment message is sent twice. */
 export const DOUBLE_EVERY = 7;
-export const SEGMENTS_PER_DAY = 8;
+/** Ticks in a segment: eight a day, but no shorter than pays for a segment's head. */
+export const segmentTicks = (ticksPerDay: number): number => Math.max(144, Math.round(ticksPerDay / 8));
 /** The plant that wears, and how far it is gone when it does: its door seal at the end of its life. */
 export const WORN_SITE = 'penvarrow';
 export const WEAR = 1;
@@ -44,7 +45,7 @@ export interface Timetable {
 
 const WARM_DAYS = 0.8;
 
-/** Lays the season over a number of days, at least two. */
+/** Lays the season over a number of days, at least four. */
 export function timetableOf(days: number): Timetable {
   const at = (share: number): number => WARM_DAYS + (days - WARM_DAYS) * share;
   return {

@@ -22,7 +22,7 @@ import {
   PLAY_MS,
   POWER_CUT_SITE,
   ROUGH,
-  SEGMENTS_PER_DAY,
+  segmentTicks,
   type Timetable,
   timetableOf,
   WEAR,
@@ -70,7 +70,8 @@ async function play(context: StoryContext): Promise<StoryResult> {
   await playTo(season, timetable.refitted, 'worn');
   const standIn = new StandIn(season.worn);
   await refitWorn(season);
-  await Promise.all([rollWorn(season), playTo(season, timetable.end, 'refitted')]);
+  await rollWorn(season);
+  await playTo(season, timetable.end, 'refitted');
   await Promise.all(incidents);
   const result = await gatherOutcome({ ...season, standIn });
   return { ...result, linger: (signal) => linger(season, signal) };
@@ -137,7 +138,7 @@ function gatewayStart({ workshop }: Season, site: SiteRun): GatewayStart {
     siteFile: site.siteFile,
     trust: workshop.publicKey,
     bundle: site.bundles[0].file,
-    segmentTicks: Math.round(site.perDay / SEGMENTS_PER_DAY),
+    segmentTicks: segmentTicks(site.perDay),
   };
 }
 

@@ -4,7 +4,7 @@ import { faultsOf, HABITS, timetableOf } from '../../../demo-fleet/stories/seaso
 
 describe('the season', () => {
   it('keeps its order however many days it is given', () => {
-    for (const days of [3, 4, 5, 12, 30]) {
+    for (const days of [4, 5, 12, 30]) {
       const { learned, powerCut, linkCut, deskAway, deskBack, worn, refitted, end } = timetableOf(days);
       const order = [0, learned, powerCut, linkCut, deskAway, deskBack, worn, refitted, end];
       expect(order).toEqual([...order].sort((a, b) => a - b));
