@@ -1,5 +1,6 @@
 /** Time as a port, so that tests own it. Wall time labels; monotonic time measures and waits. */
 
+/** The clocks of a machine. */
 export interface Clock {
   /** Wall clock, ms since 1970 UTC. May step. */
   wall(): number;

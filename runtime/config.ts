@@ -20,6 +20,7 @@ import { parseBrokerUrl, type TlsOptions } from './mqtt/stream.ts';
 /** When ticks close: by the wall clock, or by the times of the readings alone (replays, accelerated plants). */
 export type ClockKind = 'wall' | 'readings';
 
+/** How to reach the broker and be let in. */
 export interface BrokerConfig {
   readonly url: string;
   readonly protocol: 'auto' | 4 | 5;
@@ -28,6 +29,7 @@ export interface BrokerConfig {
   readonly tls: TlsOptions;
 }
 
+/** Everything a gateway is started with, checked. */
 export interface GatewayConfig {
   readonly site: Site;
   readonly gateway: string;

@@ -29,6 +29,7 @@ export interface AppendFile {
   close(): void;
 }
 
+/** The disk, in single operations. */
 export interface Disk {
   makeFolder(path: string): void;
   /** Null where there is no such file. */

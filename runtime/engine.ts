@@ -16,6 +16,7 @@ import { type Identity, openIdentity, type Recovered, recover, renewIdentity } f
 import { Spool } from './residuals/spool.ts';
 import { type CheckedBundle, Serving } from './serving.ts';
 
+/** What an engine is made of. */
 export interface EngineOptions {
   readonly site: Site;
   readonly gateway: string;
@@ -33,6 +34,7 @@ const RECENT_TICKS = 8192;
 /** An outage of more ticks than this is not bridged: the filter starts afresh behind it. */
 const MAX_GAP_TICKS = 50_000;
 
+/** See the file head. */
 export class Engine {
   readonly counters = new Counters();
   readonly decoder: ReadingDecoder;

@@ -30,6 +30,7 @@ export function incomingPath(folder: string): string {
   return join(folder, 'incoming.swb');
 }
 
+/** A running gateway; see the file head. */
 export class Gateway {
   readonly engine: Engine;
   readonly #config: GatewayConfig;

@@ -15,6 +15,7 @@ export type RefusedCause =
   | 'flood'
   | 'clock-unset';
 
+/** Counts since the start; fields are written by the engine alone. */
 export class Counters {
   /** Readings taken, late ones among them. */
   readings = 0;

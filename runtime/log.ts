@@ -2,6 +2,7 @@
 import { pino } from 'pino';
 import { RuntimeError } from './errors.ts';
 
+/** Four levels of lines. */
 export interface Log {
   debug(text: string): void;
   info(text: string): void;
@@ -9,6 +10,7 @@ export interface Log {
   error(text: string): void;
 }
 
+/** Levels as the command line takes them. */
 export const LOG_LEVELS = ['debug', 'info', 'warn', 'error', 'silent'] as const;
 
 /** throws  RuntimeError 'options' on an unknown level */

@@ -30,6 +30,7 @@ export interface CheckedBundle {
   readonly sequence: number;
 }
 
+/** See the file head. Buffers are overwritten by each step. */
 export class Serving {
   /** Replaced when the same document comes under a higher sequence. */
   checked: CheckedBundle;

@@ -24,6 +24,7 @@ export type Offered =
   | { readonly outcome: 'known' }
   | { readonly outcome: 'refused'; readonly code: RefusalCode | 'disk'; readonly reason: string };
 
+/** Keeper of the two slots; see the file head. */
 export class BundleKeeper {
   readonly #site: Site;
   readonly #trusted: TrustedKeys;

@@ -32,10 +32,12 @@ export type RefusalCode =
   | 'model'
   | 'probe';
 
+/** What came of the questions. */
 export type Verdict =
   | { readonly ok: true; readonly checked: CheckedBundle }
   | { readonly ok: false; readonly code: RefusalCode; readonly reason: string };
 
+/** What a bundle is held against. */
 export interface LoadContext {
   readonly site: Site;
   readonly trusted: TrustedKeys;

@@ -12,8 +12,10 @@ import { type Disk, replaceOn, sweepParts } from '../disk.ts';
 import { RuntimeError } from '../errors.ts';
 import { type HighWater, raised } from './high-water.ts';
 
+/** Name of a slot. */
 export type Slot = 'a' | 'b';
 
+/** See the file head. */
 export class Slots {
   readonly #disk: Disk;
   readonly #folder: string;

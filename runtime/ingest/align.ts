@@ -7,6 +7,7 @@
 import type { Aggregate } from '@stillwell/protocol';
 import { aggregateTick, latestValue, type TickReadings } from './aggregate.ts';
 
+/** How readings are laid on ticks. */
 export interface AlignerOptions {
   readonly tickMs: number;
   readonly latenessMs: number;
@@ -61,6 +62,7 @@ const MAX_READINGS_PER_TICK = 4096;
 /** A stamp further ahead than this of everything before needs a second reading near it to be believed. */
 const PLAUSIBLE_JUMP_MS = 24 * 3600 * 1000;
 
+/** See the file head. */
 export class Aligner {
   readonly #options: AlignerOptions;
   readonly #rememberTicks: number;

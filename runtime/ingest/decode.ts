@@ -21,6 +21,7 @@ interface Route {
 /** Topics remembered; beyond these each message is matched anew, so that a flood of topics costs time, not memory. */
 const REMEMBERED_TOPICS = 4096;
 
+/** A site's mapping from topics to channels. */
 export class ReadingDecoder {
   readonly #routes: readonly Route[];
   readonly #byTopic = new Map<string, readonly Route[]>();

@@ -1,5 +1,6 @@
 /** The readings of the latest ticks, in memory, to warm a new bundle's filter with. */
 
+/** A ring of ticks; see the file head. */
 export class RecentTicks {
   readonly #values: Float64Array;
   readonly #channelCount: number;

@@ -35,6 +35,7 @@ export type ConnectionEvent =
   | { readonly kind: 'taken-over'; readonly count: number }
   | { readonly kind: 'stopped'; readonly reason: string };
 
+/** How to connect, and who hears of it. */
 export interface ConnectionOptions {
   /** mqtt:// or mqtts://; user and password in it are used unless given apart. */
   readonly url: string;
@@ -59,6 +60,7 @@ export interface ConnectionOptions {
   readonly random?: () => number;
 }
 
+/** A connection that keeps itself up. */
 export interface Connection {
   readonly isConnected: boolean;
   /** Protocol of the present connection, or of the last one; null before the first. */

@@ -25,6 +25,7 @@ const VERSIONS = {
   message_format: String(MESSAGE_FORMAT),
 };
 
+/** What health is said of. */
 export interface HealthReport {
   readonly site: string;
   readonly gateway: string;

@@ -24,6 +24,7 @@ const LEAST_BETWEEN_MS = 1000;
 const LAST_WORD_MS = 800;
 const DEFAULT_WILL_DELAY_SECONDS = 10;
 
+/** See the file head. */
 export class Publisher {
   reconnects = 0;
   isCatchingUp = false;

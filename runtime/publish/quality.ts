@@ -6,6 +6,7 @@
 import type { Quality } from '@stillwell/protocol';
 import type { Serving } from '../serving.ts';
 
+/** A letter and its reason. */
 export interface Judged {
   /** null: good. */
   readonly quality: Quality | null;

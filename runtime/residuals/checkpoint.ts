@@ -17,6 +17,7 @@
  */
 import { crc32 } from 'node:zlib';
 
+/** Where a segment starts. */
 export interface Checkpoint {
   readonly stream: Uint8Array;
   readonly number: number;

@@ -15,6 +15,7 @@ import { type Checkpoint, encodeCheckpoint } from './checkpoint.ts';
 import type { Spool } from './spool.ts';
 import { Wal } from './wal.ts';
 
+/** What a journal is made of. */
 export interface JournalOptions {
   readonly disk: Disk;
   /** The data folder. */
@@ -71,6 +72,7 @@ export function journalPath(folder: string, number: number): string {
   return join(journalFolder(folder), `${String(number).padStart(10, '0')}.swj`);
 }
 
+/** See the file head. */
 export class Journal {
   readonly #options: JournalOptions;
   readonly #streamName: string;

@@ -6,6 +6,7 @@ import type { Clock } from '../clock.ts';
 import type { RuntimeError } from '../errors.ts';
 import type { Spool, Waiting } from './spool.ts';
 
+/** What a shipper is made of. */
 export interface ShipperOptions {
   readonly spool: Spool;
   readonly clock: Clock;
@@ -38,6 +39,7 @@ interface Attempt {
 /** Reconnects in quick succession do not resend what went out a moment ago. */
 const SETTLE_MS = 5000;
 
+/** See the file head. */
 export class Shipper {
   readonly #options: ShipperOptions;
   readonly #attempts = new Map<string, Attempt>();

@@ -20,6 +20,7 @@ export interface Shed {
   readonly bytes: number;
 }
 
+/** See the file head. */
 export class Spool {
   readonly #disk: Disk;
   readonly #folder: string;

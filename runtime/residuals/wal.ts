@@ -30,11 +30,13 @@ export interface WalHead {
   readonly number: number;
 }
 
+/** One frame of a journal file. */
 export type WalRecord =
   | { readonly kind: 'tick'; readonly tick: number; readonly values: Float64Array }
   | ({ readonly kind: 'change' } & LateChange)
   | { readonly kind: 'open'; readonly open: OpenReadings };
 
+/** A journal file, as far as it checks. */
 export interface WalContent {
   readonly head: WalHead;
   readonly records: readonly WalRecord[];
