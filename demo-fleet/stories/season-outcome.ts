@@ -201,7 +201,7 @@ function segmentTable(outcomes: readonly SiteOutcome[]): string {
 function refitLine(before: Score | null, after: Score | null): string {
   if (before === null || after === null) return `${WORN_SITE}: no forecast of the refitted bundle came in`;
   return (
-    `${WORN_SITE} after its seal failed and the refit was rolled: error ${after.mse.toFixed(3)}, ` +
+    `${WORN_SITE} after it wore and the refit was rolled: error ${after.mse.toFixed(3)}, ` +
     `with the old bundle it would have been ${before.mse.toFixed(3)} (${after.pairs} pairs)`
   );
 }

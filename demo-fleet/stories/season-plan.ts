@@ -22,12 +22,12 @@ export const ROUGH: Roughness = {
 export const DOUBLE_EVERY = 7;
 /** Ticks in a segment: eight a day, but no shorter than pays for a segment's head. */
 export const segmentTicks = (ticksPerDay: number): number => Math.max(144, Math.round(ticksPerDay / 8));
-/** The plant that wears, and how far it is gone when it does: its door seal at the end of its life. */
-export const WORN_SITE = 'penvarrow';
-export const WEAR = 1;
+/** The plant that wears, and how far it is gone: its pumps have lost nearly a fifth of their head. */
+export const WORN_SITE = 'brackwith';
+export const WEAR = 0.6;
 /** Sites whose gateway loses power, and whose link is cut. */
 export const POWER_CUT_SITE = 'quennadale';
-export const LINK_CUT_SITE = 'brackwith';
+export const LINK_CUT_SITE = 'ellerquint';
 
 /** Days from the start of play. */
 export interface Timetable {
@@ -37,7 +37,7 @@ export interface Timetable {
   readonly linkCut: number;
   readonly deskAway: number;
   readonly deskBack: number;
-  /** The seal fails, and the new bundle is rolled. */
+  /** The plant has worn, and the new bundle is rolled. */
   readonly worn: number;
   readonly refitted: number;
   readonly end: number;

@@ -66,7 +66,7 @@ async function play(context: StoryContext): Promise<StoryResult> {
 
   await playTo(season, timetable.worn, 'as learned');
   season.worn.plant.wear(WEAR);
-  narrator.say(`${WORN_SITE}: the door seal fails; play goes on, the desk collects the residuals`);
+  narrator.say(`${WORN_SITE}: the pumps have worn and lift less; play goes on, the desk collects the residuals`);
   await playTo(season, timetable.refitted, 'worn');
   const standIn = new StandIn(season.worn);
   await refitWorn(season);
@@ -192,7 +192,12 @@ function scheduleIncidents(season: Season): Promise<void>[] {
   const { narrator } = context;
   const powerCut = siteNamed(sites, POWER_CUT_SITE);
   const linkCut = siteNamed(sites, LINK_CUT_SITE);
+  const away = powerCut.when(timetable.deskAway, async () => {
+    narrator.say('the desk goes away; gateways keep their segments');
+    await fleet.stopDesk();
+  });
   return [
+    away,
     powerCut.when(timetable.powerCut, async () => {
       await fleet.killGateway(powerCut.name);
       fleet.startGateway(gatewayStart(season, powerCut));
@@ -202,11 +207,8 @@ function scheduleIncidents(season: Season): Promise<void>[] {
       const cut = fleet.cutLink(linkCut.name);
       narrator.say(`${linkCut.name}: link cut under ${cut} connection${cut === 1 ? '' : 's'}`);
     }),
-    powerCut.when(timetable.deskAway, async () => {
-      await fleet.stopDesk();
-      narrator.say('the desk is away; gateways keep their segments');
-    }),
     powerCut.when(timetable.deskBack, async () => {
+      await away;
       fleet.startDesk(workshop.bundleFolder);
       narrator.say('the desk is back');
     }),
