@@ -7,6 +7,7 @@ import { RuntimeError } from '../errors.ts';
 import { Gateway } from '../gateway.ts';
 import { takeLock } from '../lock.ts';
 import { createLog } from '../log.ts';
+import { keepHeapSmall } from '../memory.ts';
 import { brokerOptions, siteOptions } from './options.ts';
 
 interface RunOptions extends RawOptions {
@@ -33,7 +34,10 @@ export function runCommand(): Command {
       '\nExample:\n  stillwell-gateway run --site site.yaml --data /var/lib/stillwell --trust author.pub \\\n' +
         '    --broker mqtt://localhost:1883 --bundle first.swb',
     )
-    .action(run);
+    .action(async (options: RunOptions) => {
+      keepHeapSmall();
+      await run(options);
+    });
 }
 
 async function run(options: RunOptions): Promise<void> {

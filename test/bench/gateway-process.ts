@@ -169,7 +169,6 @@ function startGateway(
   const command = fileURLToPath(new URL('../stillwell-gateway.js', import.meta.resolve('@stillwell/runtime')));
   const { site, key, bundle } = files;
   const given = ['--site', site, '--trust', key, '--bundle', bundle, '--data', data, '--broker', url, '--log', 'warn'];
-  // By its own first line, which names the flags of a normal install.
   return spawn(command, ['run', '--gateway', 'g1', ...given, ...extra], { stdio: 'inherit' });
 }
 

@@ -1,0 +1,11 @@
+/**
+ * A gateway lives in a box with little memory. V8 would let garbage pile up to several times the living heap before it
+ * looks; a gateway makes little garbage and can afford to look sooner. The size of the nursery can only be given on the
+ * command line: stillwell-gateway.js does.
+ */
+import { setFlagsFromString } from 'node:v8';
+
+/** Keeps the heap near its living size from now on. For the start of a process, not for a library's user. */
+export function keepHeapSmall(): void {
+  setFlagsFromString('--heap-growing-percent=10');
+}
