@@ -36,7 +36,7 @@ export interface FilterState {
   readonly started: Uint8Array;
   /** (nc) ticks since a reading was folded in; counts up to 2 × horizon, which also stands for "never". */
   readonly age: Int32Array;
-  /** (nc) readings passed over since one was folded in. */
+  /** (nc) readings passed over, less those that came near their forecast since; 0 to rejectMaxTicks, where the guard opens. */
   readonly passed: Int32Array;
   /** (nc × memoryCount) */
   readonly memory: Float64Array;

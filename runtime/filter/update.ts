@@ -13,8 +13,11 @@ import { type FilterState, FOLDED, MISSING, PASSED_OVER, refresh } from './state
  * Folds one tick into the state, in place. A NaN or infinite reading counts as missing.
  *
  * Guard: a reading of a signal further from its forecast than rejectSd × residualScale × √a, with a the ticks since a
- * reading was folded in (1 where none was missed), is passed over, at most rejectMaxTicks in a row; √a, since the error
- * of a random walk grows so. Inputs are commands and setpoints, whose jumps are real: they are never passed over.
+ * reading was folded in (1 where none was missed), is passed over; √a, since the error of a random walk grows so. Each one
+ * passed over is counted, each one near its forecast takes one off the count, and at rejectMaxTicks the guard stands open:
+ * readings are folded in however far off, until they come near again. Were the count cleared by the first reading folded
+ * in, a filter once thrown off its plant would pass over rejectMaxTicks of every rejectMaxTicks + 1 readings for ever.
+ * Inputs are commands and setpoints, whose jumps are real: they are never passed over.
  *
  * shapes  readings (nc)
  * units   readings in units of the channels; state standardised
@@ -48,7 +51,8 @@ function observe(model: LinearModel, state: FilterState, c: number, readings: Fl
   const z = Math.min(state.high[c], Math.max(state.low[c], (y - model.mean[c]) / model.scale[c]));
   state.reading[c] = z;
   state.innovation[c] = z - state.predicted[c];
-  if (isPassedOver(model, state, c)) {
+  const isFar = isFarOff(model, state, c);
+  if (isFar && state.passed[c] < model.rejectMaxTicks) {
     state.passed[c]++;
     state.observed[c] = PASSED_OVER;
     replace(model, state, c);
@@ -56,7 +60,7 @@ function observe(model: LinearModel, state: FilterState, c: number, readings: Fl
   }
   state.observed[c] = FOLDED;
   state.age[c] = 0;
-  state.passed[c] = 0;
+  if (!isFar && state.passed[c] > 0) state.passed[c]--;
   state.value[c] = z;
   if (state.started[c] === 1) {
     advanceChannel(model, state.bank, state.memory, state.value, c);
@@ -66,8 +70,8 @@ function observe(model: LinearModel, state: FilterState, c: number, readings: Fl
   }
 }
 
-function isPassedOver(model: LinearModel, state: FilterState, c: number): boolean {
-  if (c >= model.signalCount || state.started[c] === 0 || state.passed[c] >= model.rejectMaxTicks) return false;
+function isFarOff(model: LinearModel, state: FilterState, c: number): boolean {
+  if (c >= model.signalCount || state.started[c] === 0) return false;
   const limit = model.rejectSd * model.residualScale[c] * Math.sqrt(state.age[c] + 1);
   return Math.abs(state.innovation[c]) > limit;
 }

@@ -30,6 +30,17 @@ describe('guard', () => {
     expect(judged(18.9, 5)).toEqual([PASSED_OVER, PASSED_OVER, PASSED_OVER, FOLDED, FOLDED]);
   });
 
+  test('a plant that keeps jumping opens the guard, and it shuts again only as readings come near', () => {
+    const state = settled();
+    const swings = Array.from({ length: 12 }, (_, k) => judged(k % 2 === 0 ? 18.9 : 1.1, 1, state)[0]);
+    expect(swings).toEqual([PASSED_OVER, PASSED_OVER, PASSED_OVER, ...new Array(9).fill(FOLDED)]);
+    expect(state.passed[0]).toBe(3);
+    // At rest at 10: the first is still far from 1.1, the others near.
+    judged(10, 60, state);
+    expect(state.passed[0]).toBe(0);
+    expect(judged(18.9, 1, state)).toEqual([PASSED_OVER]);
+  });
+
   test('the limit grows as the root of the ticks without a reading folded in', () => {
     // 4 units: above 3, below 3 √2
     expect(judged(14, 2)).toEqual([PASSED_OVER, FOLDED]);
