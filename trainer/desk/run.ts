@@ -107,7 +107,13 @@ async function openLink(options: DeskOptions, store: Store, shelf: Shelf) {
     await connection.end(true);
     throw brokerError(cause);
   }
-  await collector.repeatReceipts();
+  try {
+    await collector.repeatReceipts();
+  } catch (cause) {
+    // A desk without a store must not stay on the line and take what it cannot keep.
+    await connection.end(true);
+    throw cause;
+  }
   return { connection, collector };
 }
 
