@@ -124,7 +124,8 @@ export function readGiven(disk: Disk, path: string, what: string): Uint8Array {
     bytes = disk.read(path);
   } catch (cause) {
     const code = (cause as { code?: string }).code ?? 'unreadable';
-    throw new RuntimeError('file', `${what} ${path}: cannot be read (${code})`, { cause });
+    const why = code === 'EISDIR' ? 'expected a file, got a folder' : `cannot be read (${code})`;
+    throw new RuntimeError('file', `${what} ${path}: ${why}`, { cause });
   }
   if (bytes === null) throw new RuntimeError('file', `${what} ${path}: no such file`);
   if (bytes.length === 0) throw new RuntimeError('file', `${what} ${path}: the file is empty`);

@@ -14,6 +14,7 @@ import {
   type TrustedKeys,
 } from '@stillwell/protocol';
 import { checkModel, type LinearModel, modelFromBundle, runProbe } from '@stillwell/runtime/filter';
+import { RuntimeError } from '../errors.ts';
 import type { CheckedBundle } from '../serving.ts';
 import { type HighWater, standing } from './high-water.ts';
 
@@ -65,6 +66,18 @@ export function checkBundle(sealed: Uint8Array, context: LoadContext): Verdict {
   } catch (error) {
     return refuse(codeOf(error), error instanceof Error ? error.message : String(error));
   }
+}
+
+/**
+ * Checks a bundle file that a person named, before anything is made or changed for it: all but its place in the sequence,
+ * which the data folder knows.
+ *
+ * throws  RuntimeError 'bundle' naming the file, which question it failed and why
+ */
+export function checkNamed(path: string, sealed: Uint8Array, site: Site, trusted: TrustedKeys): CheckedBundle {
+  const verdict = checkBundle(sealed, { site, trusted, highWater: [], isOwn: false });
+  if (verdict.ok) return verdict.checked;
+  throw new RuntimeError('bundle', `${path}: refused (${verdict.code}): ${verdict.reason}`);
 }
 
 function refuse(code: RefusalCode, reason: string): { ok: false; code: RefusalCode; reason: string } {

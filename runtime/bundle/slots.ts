@@ -15,6 +15,11 @@ import { type HighWater, raised } from './high-water.ts';
 /** Name of a slot. */
 export type Slot = 'a' | 'b';
 
+/** Whether a data folder has a bundle in either slot, whole or not; touches nothing. */
+export function holdsBundle(disk: Disk, folder: string): boolean {
+  return (['a', 'b'] as const).some((slot) => disk.size(join(folder, 'slots', `${slot}.swb`)) > 0);
+}
+
 /** See the file head. */
 export class Slots {
   readonly #disk: Disk;

@@ -1,7 +1,7 @@
 /** `stillwell-gateway check`: everything a start needs, tried in order, and a few seconds of listening to the plant. */
 import { type Site, toHex, topicsOf } from '@stillwell/protocol';
 import { Command } from 'commander';
-import { checkBundle } from '../bundle/load.ts';
+import { checkNamed } from '../bundle/load.ts';
 import { type BrokerConfig, type RawOptions, readConfig, readGiven } from '../config.ts';
 import { nodeDisk } from '../disk.ts';
 import { RuntimeError } from '../errors.ts';
@@ -64,9 +64,8 @@ async function check(options: CheckOptions): Promise<void> {
 
 function bundleSummary(path: string, config: ReturnType<typeof readConfig>): { digest: string; sequence: number } {
   const sealed = readGiven(nodeDisk, path, 'bundle');
-  const verdict = checkBundle(sealed, { site: config.site, trusted: config.trusted, highWater: [], isOwn: false });
-  if (!verdict.ok) throw new RuntimeError('bundle', `${path}: refused (${verdict.code}): ${verdict.reason}`);
-  return { digest: toHex(verdict.checked.digest), sequence: verdict.checked.sequence };
+  const { digest, sequence } = checkNamed(path, sealed, config.site, config.trusted);
+  return { digest: toHex(digest), sequence };
 }
 
 async function listen(

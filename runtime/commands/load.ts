@@ -2,6 +2,7 @@
 import { toHex } from '@stillwell/protocol';
 import { Command } from 'commander';
 import { BundleKeeper } from '../bundle/change.ts';
+import { checkNamed } from '../bundle/load.ts';
 import { makeDataFolder, readGiven, readSite, readTrust } from '../config.ts';
 import { nodeDisk, replaceOn } from '../disk.ts';
 import { RuntimeError } from '../errors.ts';
@@ -37,6 +38,7 @@ async function load(file: string, options: LoadOptions): Promise<void> {
   const site = readSite(nodeDisk, options.site);
   const trusted = readTrust(nodeDisk, options.trust);
   const sealed = readGiven(nodeDisk, file, 'bundle');
+  checkNamed(file, sealed, site, trusted);
   makeDataFolder(nodeDisk, options.data);
   const holder = lockHolder(options.data);
   const unlock = holder === null ? takeLock(options.data) : null;

@@ -1,5 +1,7 @@
 /** `stillwell-gateway run`: the gateway itself, until it is told to stop. */
 import { Command } from 'commander';
+import { checkNamed } from '../bundle/load.ts';
+import { holdsBundle } from '../bundle/slots.ts';
 import { systemClock } from '../clock.ts';
 import { makeDataFolder, type RawOptions, readConfig, readGiven } from '../config.ts';
 import { nodeDisk } from '../disk.ts';
@@ -44,6 +46,9 @@ async function run(options: RunOptions): Promise<void> {
   const log = createLog(options.log);
   const config = readConfig(nodeDisk, options);
   const first = options.bundle === undefined ? null : readGiven(nodeDisk, options.bundle, 'bundle');
+  // Where nothing else can serve, a bundle that will not do ends the start before there is anything to clear away.
+  if (first !== null && !holdsBundle(nodeDisk, config.data))
+    checkNamed(options.bundle!, first, config.site, config.trusted);
   makeDataFolder(nodeDisk, config.data);
   const unlock = takeLock(config.data);
   let gateway: Gateway | null = null;
