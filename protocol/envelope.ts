@@ -118,11 +118,14 @@ const checkHeader = (bytes: Uint8Array): { count: number; start: number } => {
   if (bytes.length >= 4 && magic !== ENVELOPE_MAGIC) {
     refuseSealed(
       'envelope',
-      `byte 0: expected "${ENVELOPE_MAGIC}", got ${JSON.stringify(magic)}: this is no sealed bundle`,
+      `byte 0: expected "${ENVELOPE_MAGIC}", got ${JSON.stringify(magic)}: this is no sealed bundle; give one that \`stillwell seal\` wrote`,
     );
   }
   if (bytes.length < HEADER_BYTES) {
-    refuseSealed('envelope', `expected a header of ${HEADER_BYTES} bytes, got ${bytes.length}: the file is cut short`);
+    refuseSealed(
+      'envelope',
+      `expected a header of ${HEADER_BYTES} bytes, got ${bytes.length}: the file is cut short; get it again`,
+    );
   }
   const view = new DataView(bytes.buffer, bytes.byteOffset, bytes.byteLength);
   const version = view.getUint8(4);
@@ -137,7 +140,8 @@ const checkHeader = (bytes: Uint8Array): { count: number; start: number } => {
   const start = HEADER_BYTES + ENTRY_BYTES * count;
   const total = start + view.getUint32(8);
   if (total !== bytes.length) {
-    const why = total > bytes.length ? 'the file is cut short' : 'something follows the document';
+    const why =
+      total > bytes.length ? 'the file is cut short; get it again' : 'something follows the document; get it again';
     refuseSealed('envelope', `expected ${total} bytes by its own header, got ${bytes.length}: ${why}`);
   }
   return { count, start };

@@ -60,7 +60,7 @@ const checkSignatures = (envelope: Envelope, message: Uint8Array, trusted: reado
     if (!verifyBytes(key.publicKey, message, signature)) {
       refuseSealed(
         'signature',
-        `the signature by key ${toHex(keyId)} does not hold: the bundle was altered or damaged`,
+        `the signature by key ${toHex(keyId)} does not hold: the bundle was altered or damaged; get it again`,
       );
     }
     held.push(keyId);
@@ -80,7 +80,7 @@ export const openSealed = (bytes: Uint8Array, trusted: TrustedKeys): OpenedBundl
   if (toHex(digest) !== toHex(envelope.digest)) {
     refuseSealed(
       'digest',
-      `expected SHA-256 ${toHex(envelope.digest)}, got ${toHex(digest)}: the document was altered or damaged`,
+      `expected SHA-256 ${toHex(envelope.digest)}, got ${toHex(digest)}: the document was altered or damaged; get it again`,
     );
   }
   const authors = trusted.filter((key) => key.kind === 'author');
@@ -89,7 +89,10 @@ export const openSealed = (bytes: Uint8Array, trusted: TrustedKeys): OpenedBundl
   if (keyIds.length === 0) {
     const signed = envelope.signatures.map((entry) => toHex(entry.keyId)).join(', ');
     const known = authors.map((key) => toHex(keyIdOf(key.publicKey))).join(', ') || 'none';
-    refuseSealed('signature', `expected a signature by a trusted author key (${known}), got one by ${signed}`);
+    refuseSealed(
+      'signature',
+      `expected a signature by a trusted author key (${known}), got one by ${signed}; give the key that it was sealed with, or a bundle sealed with that one`,
+    );
   }
   return Object.freeze({
     document: envelope.document,
