@@ -4,7 +4,7 @@
  */
 
 /** The obvious forecasts scored here: no change; the same time one period ago; the line through now and one horizon ago. */
-export const RIVALS = ['persistence', 'seasonal persistence', 'drift'] as const;
+export const RIVALS = ['persistence', 'seasonal persistence', 'recent trend'] as const;
 
 /** Sums of one stretch of play; arrays over (signals × horizon). */
 export interface Tally {
