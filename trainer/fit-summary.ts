@@ -52,6 +52,8 @@ function skillOver({ hindcast }: FitResult, rival: string, signal: number): numb
   return skillScore(ours, theirs);
 }
 
+/** Far below zero the figure itself says nothing more. */
 function percent(share: number): string {
+  if (share < -9.99) return '< -999 %';
   return Number.isFinite(share) ? `${(100 * share).toFixed(1)} %` : '-';
 }

@@ -1,12 +1,16 @@
 /**
  * Says in plain words whether the model beat the obvious guesses on history it never saw. The gate is deliberately
- * simple: skill over the strongest simple rival, averaged over the horizon. It is not a significance test.
+ * simple: skill over the strongest simple rival, averaged over the horizon, of at least a hundredth. It is not a
+ * significance test.
  */
 import type { Hindcast } from './hindcast.ts';
 import { meanOf, skillScore } from './scores.ts';
 
 /** Rivals that anyone would guess; the gate asks for skill over these. The window ridge is reported beside them. */
 const SIMPLE_RIVALS: readonly string[] = ['persistence', 'seasonal persistence', 'drift'];
+
+/** Less counts as none: where nothing can be forecast, as in a random walk, chance alone gives a few thousandths. */
+const LEAST_SKILL = 0.01;
 
 /** Worse than this is all one: the sentence says a hundredfold. */
 const MOST_WORSE = 99;
@@ -51,14 +55,14 @@ export function judge(hindcast: Hindcast): Verdicts {
   const signals = hindcast.signals.map((_, i) => judgeSignal(hindcast, i, horizons));
   const skills = Float64Array.from(signals, (verdict) => verdict.skill);
   const meanSkill = meanOf(skills);
-  const better = signals.filter((verdict) => verdict.skill > 0).length;
-  const hasSkill = better > 0 && meanSkill > 0;
+  const better = signals.filter((verdict) => verdict.skill >= LEAST_SKILL).length;
+  const hasSkill = better > 0 && meanSkill >= LEAST_SKILL;
   return Object.freeze({
     horizons,
     signals,
     meanSkill,
     hasSkill,
-    sentence: wholeSentence(signals.length, better, meanSkill),
+    sentence: wholeSentence(signals.length, better, meanSkill, hasSkill),
   });
 }
 
@@ -101,21 +105,29 @@ function judgeSignal(hindcast: Hindcast, i: number, horizons: readonly number[])
     skillAt: horizons.map((h) => skillOver(h - 1, h)[0]),
     coverage: meanOf(hindcast.coverage, i * H, (i + 1) * H),
   };
-  return { ...verdict, sentence: signalSentence(verdict, H, hindcast.nominalCoverage) };
+  const isPerfect = rival !== -1 && meanOf(hindcast.rivalMse, rival * cells + i * H, rival * cells + (i + 1) * H) === 0;
+  return { ...verdict, sentence: signalSentence(verdict, isPerfect, H, hindcast.nominalCoverage) };
 }
 
-function signalSentence(verdict: Omit<Verdict, 'sentence'>, horizon: number, nominal: number): string {
+function signalSentence(
+  verdict: Omit<Verdict, 'sentence'>,
+  isRivalPerfect: boolean,
+  horizon: number,
+  nominal: number,
+): string {
   const { signal, skill, bestRival, coverage } = verdict;
   if (Number.isNaN(skill)) return `${signal}: no readings in the judged part, so nothing is known of its skill.`;
   const over = horizon === 1 ? 'one step ahead' : `over ${horizon} steps`;
   const bounds = `${percent(coverage)} inside the ${percent(nominal)} bounds`;
-  if (skill > 0) return `${signal}: squared error ${percent(skill)} below ${bestRival} ${over}; ${bounds}.`;
-  return `${signal}: no better than ${bestRival} ${over} (squared error ${percent(Math.min(-skill, MOST_WORSE))} above); ${bounds}.`;
+  if (isRivalPerfect) return `${signal}: no better than ${bestRival}, which made no error ${over}; ${bounds}.`;
+  if (skill >= LEAST_SKILL) return `${signal}: squared error ${percent(skill)} below ${bestRival} ${over}; ${bounds}.`;
+  const away = `${percent(Math.min(Math.abs(skill), MOST_WORSE))} ${skill > 0 ? 'below' : 'above'}`;
+  return `${signal}: no better than ${bestRival} ${over} (squared error ${away}); ${bounds}.`;
 }
 
-function wholeSentence(signals: number, better: number, meanSkill: number): string {
+function wholeSentence(signals: number, better: number, meanSkill: number, hasSkill: boolean): string {
   const of = `${better} of ${signals} ${signals === 1 ? 'signal' : 'signals'}`;
-  if (better > 0 && meanSkill > 0) {
+  if (hasSkill) {
     return `Beats the best obvious guess on ${of}; on average the mean squared error is ${percent(meanSkill)} lower.`;
   }
   return `Shows no skill over the best obvious guess (better on ${of}, mean skill ${percent(meanSkill)}); it should not be sealed.`;

@@ -1,0 +1,68 @@
+/** What the judge says of a hindcast, by hand-made tables: two signals, one step, persistence and a window ridge. */
+import { describe, expect, it } from 'vitest';
+import { judge } from '../../../trainer/judge/gate.ts';
+import type { Hindcast } from '../../../trainer/judge/hindcast.ts';
+
+function cast(ours: readonly number[], persistence: readonly number[]): Hindcast {
+  const cells = ours.length;
+  return {
+    signals: ['level', 'flow'].slice(0, cells),
+    units: ['m', 'm3/h'].slice(0, cells),
+    horizon: 1,
+    tickMs: 60_000,
+    origins: 100,
+    fromMs: 0,
+    toMs: 6_000_000,
+    rivals: ['persistence', 'window ridge'],
+    count: new Float64Array(cells).fill(100),
+    mse: Float64Array.from(ours),
+    mae: new Float64Array(cells),
+    bias: new Float64Array(cells),
+    mseStandardised: Float64Array.from(ours),
+    maeStandardised: new Float64Array(cells),
+    // The window ridge is far better than ours: it must not count against it.
+    rivalMse: Float64Array.from([...persistence, ...persistence.map((value) => value / 100)]),
+    rivalMae: new Float64Array(2 * cells),
+    scale: new Float64Array(cells).fill(1),
+    nominalCoverage: 0.9,
+    coverage: new Float64Array(cells).fill(0.9),
+    width: new Float64Array(cells),
+    residuals: [],
+    paths: [],
+    readings: [],
+  };
+}
+
+describe('the gate', () => {
+  it('finds skill over the strongest simple rival', () => {
+    const verdicts = judge(cast([0.6, 1.1], [1, 1]));
+    expect(verdicts.hasSkill).toBe(true);
+    expect(verdicts.meanSkill).toBeCloseTo(0.15, 12);
+    expect(verdicts.sentence).toMatch(/^Beats the best obvious guess on 1 of 2 signals/);
+    expect(verdicts.signals.map((one) => one.sentence)).toEqual([
+      'level: squared error 40 % below persistence one step ahead; 90 % inside the 90 % bounds.',
+      'flow: no better than persistence one step ahead (squared error 10 % above); 90 % inside the 90 % bounds.',
+    ]);
+  });
+
+  it('takes less than a hundredth for none', () => {
+    const verdicts = judge(cast([0.995, 0.991], [1, 1]));
+    expect(verdicts.hasSkill).toBe(false);
+    expect(verdicts.sentence).toMatch(/^Shows no skill .* it should not be sealed\.$/);
+    expect(verdicts.signals[0]!.sentence).toContain('no better than persistence');
+    expect(verdicts.signals[0]!.sentence).toContain('(squared error 0.5 % below)');
+    expect(judge(cast([0.99, 0.99], [1, 1])).hasSkill).toBe(true);
+  });
+
+  it('is not carried by one signal where another loses more', () => {
+    expect(judge(cast([0.5, 1.6], [1, 1])).hasSkill).toBe(false);
+  });
+
+  it('says so where a rival made no error at all', () => {
+    const verdicts = judge(cast([0.2, 0], [0, 0]));
+    expect(verdicts.hasSkill).toBe(false);
+    for (const { sentence } of verdicts.signals) {
+      expect(sentence).toMatch(/no better than persistence, which made no error one step ahead;/);
+    }
+  });
+});
