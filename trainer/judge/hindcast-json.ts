@@ -68,7 +68,7 @@ function average(hindcast: Hindcast): Record<string, unknown> {
     meanOf(Float64Array.from({ length: ny }, (_, i) => values[i * H + h]));
   const rivalStandardised = hindcast.rivals.map((_, r) => {
     const mse = hindcast.rivalMse.subarray(r * cells, (r + 1) * cells);
-    return mse.map((value, cell) => (value * hindcast.mseStandardised[cell]) / hindcast.mse[cell]);
+    return mse.map((value, cell) => value / hindcast.scale[Math.floor(cell / H)] ** 2);
   });
   return {
     mse_standardised: figure(meanOf(hindcast.mseStandardised)),

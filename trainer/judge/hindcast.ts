@@ -34,6 +34,8 @@ export interface Hindcast {
   readonly maeStandardised: Float64Array;
   readonly rivalMse: Float64Array;
   readonly rivalMae: Float64Array;
+  /** (ny) standard deviation of the learning part, in `unit`. */
+  readonly scale: Float64Array;
   readonly nominalCoverage: number;
   readonly coverage: Float64Array;
   readonly width: Float64Array;
@@ -196,6 +198,7 @@ class Tally {
       maeStandardised: perCell(own.mae(), 1),
       rivalMse: joined(this.#theirs.map((scores) => scores.mse())),
       rivalMae: joined(this.#theirs.map((scores) => scores.mae())),
+      scale: model.scale.slice(0, this.#ny),
       nominalCoverage: model.coverage,
       coverage: this.#coverage.share(),
       width: this.#coverage.width(),

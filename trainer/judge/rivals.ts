@@ -8,8 +8,6 @@ import { fitWindowRidge } from './window-ridge.ts';
 /** One rival; forecasts are in the units of the series it was made from. */
 export interface Rival {
   readonly name: string;
-  /** Whether it is one of the guesses anyone would make; the window ridge is not. */
-  readonly isSimple: boolean;
   /** Fills steps 1..out.length of a signal, from origin `at` (index into the series). */
   forecast(signal: number, at: number, out: Float64Array): void;
 }
@@ -57,7 +55,6 @@ export function carryForward(y: Float64Array, start: number): Float64Array {
 function persistence({ carried }: RivalInput): Rival {
   return {
     name: 'persistence',
-    isSimple: true,
     forecast(signal, at, out) {
       out.fill(carried[signal][at]);
     },
@@ -67,7 +64,6 @@ function persistence({ carried }: RivalInput): Rival {
 function seasonal({ carried, periodTicks }: RivalInput): Rival {
   return {
     name: 'seasonal persistence',
-    isSimple: true,
     forecast(signal, at, out) {
       const y = carried[signal];
       for (let h = 1; h <= out.length; h++) {
@@ -85,7 +81,6 @@ function drift({ carried }: RivalInput, learn: TickSpan): Rival {
   });
   return {
     name: 'drift',
-    isSimple: true,
     forecast(signal, at, out) {
       for (let h = 1; h <= out.length; h++) out[h - 1] = carried[signal][at] + h * slopes[signal];
     },
@@ -98,7 +93,6 @@ function windowRidge(input: RivalInput, learn: TickSpan): Rival | null {
   if (maps.some((map) => map === null)) return null;
   return {
     name: 'window ridge',
-    isSimple: false,
     forecast(signal, at, out) {
       const y = carried[signal];
       const map = maps[signal];

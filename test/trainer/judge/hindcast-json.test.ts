@@ -1,0 +1,37 @@
+/** Averages over signals must be over the same signals for the model and for every rival. */
+import { expect, it } from 'vitest';
+import type { Hindcast } from '../../../trainer/judge/hindcast.ts';
+import { hindcastJson } from '../../../trainer/judge/hindcast-json.ts';
+
+it('averages a rival over every signal, one that both forecast without error included', () => {
+  const two = (a: number, b: number): Float64Array => Float64Array.of(a, b);
+  const cast: Hindcast = {
+    signals: ['level', 'still'],
+    units: ['m', 'm'],
+    horizon: 1,
+    tickMs: 60_000,
+    origins: 10,
+    fromMs: 0,
+    toMs: 600_000,
+    rivals: ['persistence'],
+    count: two(10, 10),
+    mse: two(2, 0),
+    mae: two(1, 0),
+    bias: two(0, 0),
+    mseStandardised: two(0.5, 0),
+    maeStandardised: two(0.5, 0),
+    rivalMse: two(4, 0),
+    rivalMae: two(1, 0),
+    scale: two(2, 1),
+    nominalCoverage: 0.9,
+    coverage: two(0.9, 1),
+    width: two(1, 0),
+    residuals: [],
+    paths: [],
+    readings: [],
+  };
+  // Standardised by scale 2: ours 2/4, theirs 4/4; averaged over two signals 0.25 and 0.5.
+  const { average } = hindcastJson(cast) as { average: { mse_standardised: number; rivals: unknown } };
+  expect(average.mse_standardised).toBe(0.25);
+  expect(average.rivals).toEqual({ persistence: { mse_standardised: 0.5, skill: 0.5 } });
+});
