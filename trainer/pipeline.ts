@@ -10,10 +10,9 @@ import type { FitInput, FitOptions } from './fit-options.ts';
 import type { Series } from './history/series.ts';
 import { bankName, featureCount } from './identify/bank.ts';
 import type { Choice } from './identify/choose.ts';
-import { learnAgain } from './identify/learn.ts';
 import { chooseSize, type Size, sizeBytes } from './identify/order.ts';
-import { learnInput, type Prepared, prepareHistory } from './identify/prepare.ts';
-import { type Taught, teach } from './identify/teach.ts';
+import { type Prepared, prepareHistory } from './identify/prepare.ts';
+import { type Taught, teach, teachAgain } from './identify/teach.ts';
 import { calibrate } from './judge/calibrate.ts';
 import { judge, type Verdicts, verdictSteps } from './judge/gate.ts';
 import { type Hindcast, hindcast } from './judge/hindcast.ts';
@@ -185,7 +184,7 @@ function auditRounding(small: Small, cast: Hindcast, series: Series, split: Spli
 
 /** Learns once more from every tick, at the size and penalties already judged; bounds stay as calibrated. */
 function learnFromAll(series: Series, prepared: Prepared, taught: Taught, small: Small): Composition {
-  const learned = learnAgain(learnInput(prepared), taught.choice, series.ticks);
+  const learned = teachAgain(series, prepared, taught, series.ticks);
   const order = Math.min(small.size.order, learned.bottleneck.carried.length);
   const { tensors } = roundedFactors(learned, order, small.size.basisCount);
   return { ...small.parts, tensors, learnedToTick: series.firstTick + series.ticks };

@@ -5,6 +5,7 @@ import { runProbe } from '../../runtime/filter/index.ts';
 import { TrainError } from '../../trainer/errors.ts';
 import type { Series } from '../../trainer/history/series.ts';
 import { FIT_DEFAULTS, type FitOptions, type FitResult, fit as fitHistory } from '../../trainer/pipeline.ts';
+import { replayError } from '../../trainer/quantise/audit.ts';
 import { gaussians } from '../support/gaussian.ts';
 import { hourlySite, seriesOf, wanderingDays } from '../support/history.ts';
 import { recurrence } from '../support/sample-bundle.ts';
@@ -79,8 +80,9 @@ describe('fit', () => {
       return Math.round(100 * level) / 100;
     });
     const result = await run(seriesOf(['walk'], [walk]));
-    expect(result.verdicts.meanSkill).toBeLessThan(0.03);
-    if (!result.verdicts.hasSkill) expect(result.verdicts.sentence).toMatch(/no skill/);
+    expect(result.verdicts.hasSkill).toBe(false);
+    expect(result.verdicts.sentence).toMatch(/no skill/);
+    expect(result.verdicts.signals[0]!.sentence).toMatch(/^walk: no better than/);
   });
 
   it('learns through gaps, spikes and a level no one believes', async () => {
@@ -97,6 +99,28 @@ describe('fit', () => {
     // The spikes would move mean and scale by 1e9.
     expect(Math.abs(result.model.scale[0]! / clean.model.scale[0]! - 1)).toBeLessThan(0.05);
     expect(result.verdicts.signals[0]!.skill).toBeGreaterThan(0.7 * clean.verdicts.signals[0]!.skill);
+  });
+
+  it('gives a signal that is silent while bounds are set the spread of the learning part, and says so', async () => {
+    const result = await run(replaced(1, (value, t) => (t >= 900 && t < 1200 ? Number.NaN : value)));
+    expect(result.warnings.join(' ')).toMatch(/flow has no reading in the part that sets the bounds/);
+    // 1.645: normal quantile of 0.95, any table of the normal distribution
+    for (const radius of result.model.radius.subarray(12, 24)) expect(radius).toBeCloseTo(1.645, 3);
+    expect(result.model.residualScale[1]).toBe(1);
+    expect(result.verdicts.signals[1]!.coverage).toBeGreaterThan(0.9);
+  });
+
+  it('learns from all of it as it was judged where readings are missing', async () => {
+    const next = recurrence(29);
+    const torn = replaced(0, (value) => (next() < 2 ** 32 * 0.3 ? Number.NaN : value));
+    const whole = await run(torn, { useAll: true });
+    const later = seriesOf(
+      names,
+      torn.values.map((y) => y.slice(300)),
+      2,
+    );
+    const scored = (model: FitResult['model']): number => replayError(model, later, { fromTick: 900, toTick: 1200 });
+    expect(scored(whole.model)).toBeLessThan(1.02 * scored((await run(torn)).model));
   });
 
   it('keeps one constant signal, with a note, and forecasts its value', async () => {

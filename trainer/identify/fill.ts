@@ -17,8 +17,15 @@ export interface Filled {
   readonly inLongGap: Uint8Array;
 }
 
+/** Where the parts of a history end, in ticks from its start: what lies beyond one must not show before it. */
+export interface PartEnds {
+  readonly learnTicks: number;
+  readonly calibrateEnd: number;
+}
+
 /**
- * Completes the history.
+ * Completes the history. Seasonal means come from the learning part alone, and a gap that reaches over the end of a part
+ * is led on from its left end only, so that no part is completed from readings of a later one.
  *
  * shapes  scalings (nc); longGapTicks the shortest gap that counts as long
  * units   result standardised
@@ -31,6 +38,7 @@ export function fillHistory(
   scalings: readonly Scaling[],
   period: number,
   longGapTicks: number,
+  ends: PartEnds,
 ): Filled {
   const inLongGap = new Uint8Array(series.ticks);
   const isRead: Uint8Array[] = [];
@@ -44,7 +52,7 @@ export function fillHistory(
       z[t] = (y[t] - mean) / scale;
     }
     isRead.push(read);
-    fillGaps(z, read, period, longGapTicks, c < series.signalCount ? inLongGap : null);
+    fillGaps(z, read, period, longGapTicks, ends, c < series.signalCount ? inLongGap : null);
     return z;
   });
   return { values, isRead, inLongGap };
@@ -55,6 +63,7 @@ function fillGaps(
   read: Uint8Array,
   period: number,
   longGapTicks: number,
+  { learnTicks, calibrateEnd }: PartEnds,
   inLongGap: Uint8Array | null,
 ): void {
   let profile: Float64Array | null = null;
@@ -64,19 +73,19 @@ function fillGaps(
     while (end < z.length && read[end] === 0) end++;
     const isLong = end - t >= longGapTicks;
     if (isLong) {
-      profile ??= phaseMeans(z, read, period);
+      profile ??= phaseMeans(z.subarray(0, learnTicks), read, period);
       inLongGap?.fill(1, t, end);
     }
-    bridge(z, t, end, isLong ? profile : null);
+    const isAcross = [learnTicks, calibrateEnd].some((edge) => t < edge && end >= edge);
+    bridge(z, t, end, isLong ? profile : null, !isAcross && end < z.length);
     t = end;
   }
 }
 
-/** Fills t = from..to-1 from its two ends, or the one there is. */
-function bridge(z: Float64Array, from: number, to: number, profile: Float64Array | null): void {
+/** Fills t = from..to-1 from its two ends, or the one there is or may be looked at. */
+function bridge(z: Float64Array, from: number, to: number, profile: Float64Array | null, hasRight: boolean): void {
   const season = (t: number): number => (profile === null ? 0 : profile[t % profile.length]);
   const hasLeft = from > 0;
-  const hasRight = to < z.length;
   const right = hasRight ? z[to] - season(to) : 0;
   const left = hasLeft ? z[from - 1] - season(from - 1) : right;
   const end = hasRight ? right : left;

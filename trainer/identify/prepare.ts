@@ -5,7 +5,7 @@ import type { Site } from '@stillwell/protocol';
 import type { Series } from '../history/series.ts';
 import type { Surroundings } from '../quantise/float-model.ts';
 import type { Split } from '../requirements.ts';
-import { type Filled, fillHistory } from './fill.ts';
+import { type Filled, fillHistory, type PartEnds } from './fill.ts';
 import type { LearnInput } from './learn.ts';
 import { findPeriod } from './period.ts';
 import { findScalings, type Scaling } from './scaling.ts';
@@ -46,10 +46,11 @@ export function prepareHistory(
     lattices.map((lattice) => lattice.step),
   );
   const longGap = Math.max(LEAST_LONG_GAP, site.horizon);
-  const first = fillHistory(series, scalings, 0, longGap);
+  const ends = { learnTicks, calibrateEnd: learnTicks + calibrateTicks };
+  const first = fillHistory(series, scalings, 0, longGap, ends);
   const learning = first.values.slice(0, series.signalCount).map((z) => z.subarray(0, learnTicks));
   const period = findPeriod(learning, series.tickMs);
-  const filled = period > 0 ? fillHistory(series, scalings, period, longGap) : first;
+  const filled = period > 0 ? fillHistory(series, scalings, period, longGap, ends) : first;
   return {
     around: {
       tickMs: series.tickMs,
@@ -63,7 +64,7 @@ export function prepareHistory(
     filled,
     learnTicks,
     calibrateTicks,
-    warnings: warningsOf(series, scalings, period),
+    warnings: [...warningsOf(series, scalings, period), ...silentWhereBoundsAreSet(series, ends)],
   };
 }
 
@@ -90,13 +91,22 @@ function warningsOf(series: Series, scalings: readonly Scaling[], period: number
     for (const value of series.values[c]) if (value < scaling.clipLow || value > scaling.clipHigh) beyond++;
     if (beyond > 0) {
       warnings.push(
-        `${series.names[c]}: ${beyond} readings lie outside ${shorten(scaling.clipLow)} to ${shorten(scaling.clipHigh)}, far from the ` +
-          'rest; they were left out of learning, and the gateway clips them.',
+        `${series.names[c]}: ${beyond === 1 ? '1 reading lies' : `${beyond} readings lie`} outside ${shorten(scaling.clipLow)} to ${shorten(scaling.clipHigh)}, far from the ` +
+          'rest; left out of learning, and clipped by the gateway.',
       );
     }
   });
   if (period === 0) warnings.push('No period was found, so forecasts follow recent readings alone.');
   return warnings;
+}
+
+/** Signals whose bounds cannot be calibrated. */
+function silentWhereBoundsAreSet(series: Series, ends: PartEnds): string[] {
+  return series.names.slice(0, series.signalCount).flatMap((name, i) => {
+    const isSilent = series.values[i].subarray(ends.learnTicks, ends.calibrateEnd).every(Number.isNaN);
+    if (!isSilent) return [];
+    return `${name} has no reading in the part that sets the bounds; they start as wide as the signal ever swings, and adapt.`;
+  });
 }
 
 function shorten(value: number): string {

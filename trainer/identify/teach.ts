@@ -3,6 +3,7 @@
  * and seasons, then runs over it and puts its own one-step forecast wherever no reading was folded in (zero innovation,
  * as on the gateway), and the map is learned once more from that. Spikes the guard would pass over are mended likewise.
  */
+import type { LinearModel } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
 import { calibrate } from '../judge/calibrate.ts';
 import { replay } from '../judge/replay.ts';
@@ -19,6 +20,8 @@ export interface Taught {
   readonly choice: Choice;
   readonly learned: Learned;
   readonly calibrationMoments: Moments;
+  /** The model that stood in for missing readings; null where too few are missing for a second pass. */
+  readonly passing: LinearModel | null;
   readonly warnings: readonly string[];
 }
 
@@ -43,11 +46,31 @@ export function teach(series: Series, prepared: Prepared): Taught {
   const warnings = first.usesLongGaps
     ? ['Long gaps cover more than half of the history; they had to be bridged and learned from.']
     : [];
-  const base = { choice: first.choice, calibrationMoments: first.calibration, warnings };
-  if (missingShare(prepared) < SECOND_PASS_SHARE) return { ...base, learned: first.learned };
-  const filled = refill(series, prepared, first);
-  const again = learnAgain({ ...learnInput(prepared), filled }, first.choice, prepared.learnTicks);
-  return { ...base, learned: again };
+  const { choice, calibration: calibrationMoments, learned } = first;
+  const isWhole = missingShare(prepared) < SECOND_PASS_SHARE;
+  const passing = isWhole ? null : passingModel(series, prepared, first);
+  const base = { choice, calibrationMoments, passing, warnings };
+  if (isWhole) return { ...base, learned };
+  return { ...base, learned: teachAgain(series, prepared, { choice, passing }, prepared.learnTicks) };
+}
+
+/**
+ * Learns from the first `ticks` ticks with what was chosen, missing readings bridged as in `teach`.
+ *
+ * shapes  ticks at most the series'
+ * units   standardised
+ * throws  TrainError 'fit' from the solves
+ * source  as `teach`
+ * cost    one pass of learning, and one replay where readings are missing
+ */
+export function teachAgain(
+  series: Series,
+  prepared: Prepared,
+  { choice, passing }: Pick<Taught, 'choice' | 'passing'>,
+  ticks: number,
+): Learned {
+  const filled = passing === null ? prepared.filled : refill(series, prepared, passing, ticks);
+  return learnAgain({ ...learnInput(prepared), filled }, choice, ticks);
 }
 
 function missingShare({ filled, around, learnTicks }: Prepared): number {
@@ -58,8 +81,8 @@ function missingShare({ filled, around, learnTicks }: Prepared): number {
   return missing / (around.signalCount * learnTicks);
 }
 
-function refill(series: Series, prepared: Prepared, first: LearnOutput): Filled {
-  const { around, filled, learnTicks, calibrateTicks } = prepared;
+function passingModel(series: Series, prepared: Prepared, first: LearnOutput): LinearModel {
+  const { around, learnTicks, calibrateTicks } = prepared;
   const { learned, choice } = first;
   const order = Math.min(PASS_ORDER, learned.bottleneck.carried.length);
   const factors = floatFactors(learned, order, Math.min(PASS_BASIS, around.horizon));
@@ -75,9 +98,13 @@ function refill(series: Series, prepared: Prepared, first: LearnOutput): Filled 
     { fromTick: learnTicks, toTick: learnTicks + calibrateTicks },
     PASS_COVERAGE,
   );
-  const model = floatModel(factors, surroundings, calibration);
+  return floatModel(factors, surroundings, calibration);
+}
+
+/** The completed history with the passing model's folded values in its first `ticks` ticks. */
+function refill(series: Series, { around, filled }: Prepared, passing: LinearModel, ticks: number): Filled {
   const values = filled.values.map((z) => z.slice());
-  replay(model, series, { fromTick: 0, toTick: learnTicks }, ({ at, state }) => {
+  replay(passing, series, { fromTick: 0, toTick: ticks }, ({ at, state }) => {
     for (let i = 0; i < around.signalCount; i++) if (state.started[i] === 1) values[i][at] = state.value[i];
   });
   return { ...filled, values };

@@ -1,8 +1,9 @@
 /**
  * What the bounds and the spike guard start from: errors of the rounded model on the calibration part, which it did not
- * learn from. The gateway then keeps tracking; these are only its first values.
+ * learn from. The gateway then keeps tracking; these are only its first values. A channel without one reading there
+ * starts from the spread of the learning part, one standard deviation, which is all that is known of it.
  */
-import type { LinearModel } from '@stillwell/runtime/filter';
+import { type LinearModel, normalQuantile } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
 import type { Calibration } from '../quantise/float-model.ts';
 import type { TickSpan } from '../span.ts';
@@ -62,10 +63,13 @@ export function calibrate(model: LinearModel, series: Series, span: TickSpan, co
   const residualScale = Float64Array.from(first, (errors, c) =>
     robustScale(errors, model.latticeStep[c] / model.scale[c]),
   );
+  const widest = normalQuantile(0.5 + coverage / 2);
   const jumps = stayed.map((errors, i) => quantile(errors, JUMP_QUANTILE) / residualScale[i]);
   return {
     residualScale,
-    radius: Float64Array.from(sizes, (cell, k) => conformalRadius(cell.subarray(0, counts[k]), coverage)),
+    radius: Float64Array.from(sizes, (cell, k) =>
+      counts[k] > 0 ? conformalRadius(cell.subarray(0, counts[k]), coverage) : widest,
+    ),
     rejectSd: Math.max(REJECT_SD, ...jumps.map((jump) => BEYOND_JUMPS * jump)),
     rejectMaxTicks: REJECT_MOST_TICKS,
   };
@@ -78,6 +82,7 @@ function zOf(model: LinearModel, channel: number, value: number): number {
 
 /** Never below what the lattice alone would give, a step spread evenly. */
 function robustScale(errors: readonly number[], step: number): number {
+  if (errors.every(Number.isNaN)) return 1;
   const floor = step / Math.sqrt(12);
   return Math.max(MEDIAN_FACTOR * quantile(errors, 0.5), NINETY_FACTOR * quantile(errors, 0.9), floor);
 }

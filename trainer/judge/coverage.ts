@@ -37,12 +37,11 @@ export class Coverage {
  *
  * shapes  sizes (n) absolute errors, overwritten by sorting
  * units   as the errors
- * throws  nothing; 0 where there are no errors
+ * throws  nothing; the caller gives at least one
  * source  split conformal prediction: the ⌈(n + 1) coverage⌉-th smallest; Papadopoulos and others, ECML (2002)
  * cost    O(n log n)
  */
 export function conformalRadius(sizes: Float64Array, coverage: number): number {
-  if (sizes.length === 0) return 0;
   sizes.sort();
   return sizes[Math.min(sizes.length, Math.ceil((sizes.length + 1) * coverage)) - 1];
 }

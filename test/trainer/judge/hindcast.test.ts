@@ -21,6 +21,10 @@ for (const [c, t] of [
   [1, 655],
 ] as const)
   values[c]![t] = Number.NaN;
+// Gaps in the learning part, and over the ends of the learning (420) and the calibration part (560).
+values[0]!.fill(Number.NaN, 200, 230);
+values[0]!.fill(Number.NaN, 415, 424);
+values[1]!.fill(Number.NaN, 557, 562);
 const series = seriesOf(names, values);
 const lattices = [
   { step: 0.01, offset: 0 },
