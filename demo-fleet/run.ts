@@ -47,7 +47,8 @@ const program = new Command('demo')
   .configureOutput({ outputError: (text, write) => write(`demo: ${text}`) });
 program.exitOverride((error) => process.exit(error.exitCode === 0 ? 0 : 2));
 program.parse();
-process.exitCode = await run(program.opts<RunOptions>());
+// Ended outright: a story that was interrupted or failed may still have timers and waits of its own under way.
+process.exit(await run(program.opts<RunOptions>()));
 
 async function run(options: RunOptions): Promise<number> {
   const story = options.real ? real : (STORIES.find((one) => one.name === options.story) ?? season);
