@@ -10,6 +10,7 @@ import { Command, InvalidArgumentError, Option } from 'commander';
 import { exitCodeOf, verdictTable } from './check.ts';
 import type { Fleet } from './fleet.ts';
 import { Narrator } from './progress.ts';
+import { practice } from './stories/practice.ts';
 import { real } from './stories/real.ts';
 import { season } from './stories/season.ts';
 import type { Story, StoryResult } from './stories/story.ts';
@@ -27,7 +28,7 @@ interface RunOptions {
   readonly folder?: string;
 }
 
-const STORIES: readonly Story[] = [season, real];
+const STORIES: readonly Story[] = [season, real, practice];
 
 const program = new Command('demo')
   .description('Plays a story of a simulated fleet with real gateways, a real broker and a real desk.')
@@ -88,7 +89,7 @@ async function run(options: RunOptions): Promise<number> {
     const result = await Promise.race([playing, interrupted]);
     narrator.clear();
     tell(options, story, result, narrator.seconds);
-    if (options.keep) await keep(result, folder, interruption.signal);
+    if (options.keep || story.staysOpen) await keep(result, folder, interruption.signal);
     return exitCodeOf(result.verdicts);
   } catch (error) {
     narrator.clear();
@@ -109,7 +110,10 @@ function tell(options: RunOptions, story: Story, result: StoryResult, seconds: n
     const { verdicts, figures } = result;
     process.stdout.write(`${JSON.stringify({ story: story.name, seconds, verdicts, figures })}\n`);
   } else
-    process.stdout.write(`\n${result.report}\n\n${verdictTable(result.verdicts)} ${seconds.toFixed(0)} s in all.\n`);
+    process.stdout.write(
+      `\n${[result.report, ...(result.verdicts.length > 0 ? [verdictTable(result.verdicts)] : [])].join('\n\n')} ` +
+        `${seconds.toFixed(0)} s in all.\n`,
+    );
 }
 
 async function keep(result: StoryResult, folder: string, signal: AbortSignal): Promise<void> {

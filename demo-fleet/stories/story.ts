@@ -32,5 +32,7 @@ export interface StoryResult {
 export interface Story {
   readonly name: string;
   readonly summary: string;
+  /** Runs until Ctrl-C, `--keep` or not. */
+  readonly staysOpen?: boolean;
   readonly play: (context: StoryContext) => Promise<StoryResult>;
 }
