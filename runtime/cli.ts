@@ -14,10 +14,10 @@ import { VERSION } from './version.ts';
 const program = new Command('stillwell-gateway')
   .description('Runs a predictive-state model beside a site: live state and forecasts over MQTT. Advisory only.')
   .version(VERSION)
-  .showHelpAfterError('(add --help for an example)')
+  .configureOutput({ outputError: (text, write) => write(usageLine(text)) })
   .exitOverride();
 for (const command of [runCommand, checkCommand, loadCommand, statusCommand])
-  program.addCommand(command().exitOverride());
+  program.addCommand(command().copyInheritedSettings(program));
 
 try {
   await program.parseAsync();
@@ -32,4 +32,14 @@ function report(error: unknown): number {
   if (isRefusal(error)) return 2;
   if (process.env.STILLWELL_DEBUG && error instanceof Error) process.stderr.write(`${error.stack}\n`);
   return 1;
+}
+
+/** The parser's word on a wrong use, which may run over several lines, in the one line that every other refusal has. */
+function usageLine(text: string): string {
+  const said = text
+    .trim()
+    .replace(/^error: /, '')
+    .replace(/\s*\n\s*/g, ' ')
+    .replace(/\.$/, '');
+  return `stillwell-gateway: ${said}; add --help for an example\n`;
 }

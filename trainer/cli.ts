@@ -35,7 +35,7 @@ const commands: readonly (() => Command)[] = [
 const program = new Command('stillwell')
   .description('Learns predictive-state models from site histories, seals them, rolls them out and collects residuals.')
   .version('0.1.0')
-  .showHelpAfterError('(add --help for an example)')
+  .configureOutput({ outputError: (text, write) => write(usageLine(text)) })
   .enablePositionalOptions()
   .exitOverride();
 for (const command of commands) program.addCommand(adopt(command(), program));
@@ -61,4 +61,14 @@ function report(error: unknown): number {
   if (error instanceof TrainError || error instanceof ProtocolError) return 2;
   if (process.env.STILLWELL_DEBUG && error instanceof Error) process.stderr.write(`${error.stack}\n`);
   return 1;
+}
+
+/** The parser's word on a wrong use, which may run over several lines, in the one line that every other refusal has. */
+function usageLine(text: string): string {
+  const said = text
+    .trim()
+    .replace(/^error: /, '')
+    .replace(/\s*\n\s*/g, ' ')
+    .replace(/\.$/, '');
+  return `stillwell: ${said}; add --help for an example\n`;
 }
