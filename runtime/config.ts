@@ -4,6 +4,7 @@
 import { hostname } from 'node:os';
 import { join } from 'node:path';
 import {
+  isKeyPair,
   isName,
   NAME_RULE,
   ProtocolError,
@@ -108,6 +109,12 @@ export function readTrust(disk: Disk, paths: readonly string[]): TrustedKeys {
     throw new RuntimeError('keys', '--trust: expected at least one public author key file, got none');
   return paths.map((path) => {
     const key = parseKey(readText(disk, path, 'key file'), path);
+    // Whoever reads this disk could seal bundles with it; better no gateway than one that carries it.
+    if (isKeyPair(key))
+      throw new RuntimeError(
+        'keys',
+        `${path}: expected the public half of an author key, got the private one; keep that off the gateway and give the .pub file beside it`,
+      );
     if (key.kind !== 'author')
       throw new RuntimeError(
         'keys',

@@ -19,10 +19,18 @@ export function writeStatus(disk: Disk, folder: string, health: Uint8Array): voi
   }
 }
 
-/** throws  RuntimeError 'file' when there is none, ProtocolError when it is damaged */
+/** throws  RuntimeError 'file' when there is none or it is damaged */
 export function readStatus(disk: Disk, folder: string): HealthMessage {
   const bytes = disk.read(statusPath(folder));
   if (bytes === null)
     throw new RuntimeError('file', `data folder ${folder}: no status file; has a gateway ever run here?`);
-  return parseHealthMessage(bytes);
+  try {
+    return parseHealthMessage(bytes);
+  } catch (cause) {
+    throw new RuntimeError(
+      'file',
+      `${statusPath(folder)}: ${(cause as Error).message}; the gateway writes it anew when it runs next`,
+      { cause },
+    );
+  }
 }
