@@ -36,6 +36,8 @@ export const KEY_ID_BYTES = 8;
 const PUBLIC_PREFIX = Buffer.from('302a300506032b6570032100', 'hex');
 const PRIVATE_PREFIX = Buffer.from('302e020100300506032b657004220420', 'hex');
 
+const REMEDY = 'give a file that `stillwell keys new` wrote';
+
 const refuse = (where: string, what: string, cause?: unknown): never => {
   throw new ProtocolError('key', `${where}: ${what}`, { details: { where }, cause });
 };
@@ -97,23 +99,26 @@ const readHex = (fields: Record<string, unknown>, name: string, fileName: string
   const text = fields[name];
   if (typeof text !== 'string' || !/^[0-9a-fA-F]{64}$/.test(text)) {
     const got = typeof text === 'string' ? `${text.length} characters` : text === undefined ? 'nothing' : typeof text;
-    refuse(fileName, `"${name}": expected ${KEY_BYTES} bytes as 64 hexadecimal digits, got ${got}`);
+    refuse(fileName, `"${name}": expected ${KEY_BYTES} bytes as 64 hexadecimal digits, got ${got}; ${REMEDY}`);
   }
   return Uint8Array.from(Buffer.from(text as string, 'hex'));
 };
 
 const parseFields = (text: string, fileName: string): Record<string, unknown> => {
   if (text.length > MAX_KEY_FILE_BYTES) {
-    refuse(fileName, `expected a key file of at most ${MAX_KEY_FILE_BYTES} bytes, got ${text.length}`);
+    refuse(fileName, `expected a key file of at most ${MAX_KEY_FILE_BYTES} bytes, got ${text.length}; ${REMEDY}`);
   }
   try {
     const fields: unknown = JSON.parse(text);
     if (typeof fields === 'object' && fields !== null && !Array.isArray(fields))
       return fields as Record<string, unknown>;
   } catch (cause) {
-    refuse(fileName, 'expected a key file (JSON text as `stillwell keys` writes it), got something else', cause);
+    refuse(fileName, `expected a key file (JSON text), got something else; ${REMEDY}`, cause);
   }
-  return refuse(fileName, 'expected a key file (a JSON object with "kind" and "public"), got another JSON value');
+  return refuse(
+    fileName,
+    `expected a key file (a JSON object with "kind" and "public"), got another JSON value; ${REMEDY}`,
+  );
 };
 
 /**
@@ -128,7 +133,10 @@ export const parseKey = (text: string, fileName = 'key file'): PublicKey | KeyPa
   if (unknown !== undefined) refuse(fileName, `"${unknown}" is not a field of a key file (${known.join(', ')})`);
   const { kind } = fields;
   if (kind !== 'author' && kind !== 'rollout') {
-    return refuse(fileName, `"kind": expected "author" or "rollout", got ${JSON.stringify(kind) ?? 'nothing'}`);
+    return refuse(
+      fileName,
+      `"kind": expected "author" or "rollout", got ${JSON.stringify(kind) ?? 'nothing'}; ${REMEDY}`,
+    );
   }
   const publicKey = readHex(fields, 'public', fileName);
   const id = toHex(keyIdOf(publicKey));

@@ -138,6 +138,7 @@ const yamlText = (error: { code: string; message: string }): string => {
   if (error.code === 'DUPLICATE_KEY') return 'this key appears twice in the same map; keep one';
   if (error.code === 'TAB_AS_INDENT') return 'expected spaces for indentation, got a tab';
   if (error.code === 'MULTIPLE_DOCS') return 'expected one YAML document, got several; remove the "---" line';
+  if (error.message.includes('call stack')) return 'expected a few levels of nesting, got too many to read';
   return `not valid YAML: ${error.message}`;
 };
 
@@ -194,11 +195,10 @@ const offsetOf = (document: Document.Parsed, fault: Fault): number => {
 export const parseSite = (text: string, fileName = 'site file'): Site => {
   const lines = new LineCounter();
   if (Buffer.byteLength(text) > MAX_SITE_FILE_BYTES) {
-    throw fileFault(
-      fileName,
-      lines,
-      0,
-      `expected a site file of at most ${MAX_SITE_FILE_BYTES} bytes, got ${Buffer.byteLength(text)}`,
+    throw new ProtocolError(
+      'site-file',
+      `${fileName}: expected a site file of at most ${MAX_SITE_FILE_BYTES} bytes, got ${Buffer.byteLength(text)}; check that it is the right file`,
+      { details: { fileName } },
     );
   }
   const document = readYaml(text, fileName, lines);

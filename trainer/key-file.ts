@@ -11,17 +11,23 @@ import { TrainError } from './errors.ts';
  * throws  TrainError 'file' when it cannot be read, ProtocolError 'key' when it is no key file
  */
 export function readKey(path: string): PublicKey | KeyPair {
-  return parseKey(readTextFile(path, 'a key file; make one with `stillwell keys new`'), path);
+  return parseKey(readTextFile(path, 'a key file', 'make one with `stillwell keys new`'), path);
 }
 
 /**
- * Reads a key file that must hold the private half.
+ * Reads a key file that must hold the private half of an author key.
  *
- * throws  as readKey, and TrainError 'keys' when only the public half is there
+ * throws  as readKey, and TrainError 'keys' when only the public half is there, or the key is of another kind
  */
 export function readPrivateKey(path: string): KeyPair {
   const key = readKey(path);
-  if (isKeyPair(key)) return key;
+  if (isKeyPair(key)) {
+    if (key.kind === 'author') return key;
+    throw new TrainError(
+      'keys',
+      `${path}: expected an author key to seal with, got a ${key.kind} key; give another --key`,
+    );
+  }
   throw new TrainError(
     'keys',
     `${path}: expected a private key to sign with, got the public half; give the file that \`stillwell keys new --out\` wrote`,
@@ -31,21 +37,30 @@ export function readPrivateKey(path: string): KeyPair {
 /**
  * A file's bytes.
  *
- * throws  TrainError 'file' naming what was expected there
+ * throws  TrainError 'file' naming what was expected there, with what to do about it
  */
-export function readBytesFile(path: string, expected: string): Uint8Array {
+export function readBytesFile(path: string, expected: string, remedy = 'check the path'): Uint8Array {
   try {
     return Uint8Array.from(readFileSync(path));
   } catch (cause) {
     const code = (cause as NodeJS.ErrnoException).code;
     const got = code === 'ENOENT' ? 'no such file' : code === 'EISDIR' ? 'a folder' : (cause as Error).message;
-    throw new TrainError('file', `${path}: expected ${expected}, got ${got}`, { cause });
+    throw new TrainError('file', `${path}: expected ${expected}, got ${got}; ${remedy}`, { cause });
   }
 }
 
-/** As readBytesFile, as UTF-8 text. */
-export function readTextFile(path: string, expected: string): string {
-  return Buffer.from(readBytesFile(path, expected)).toString('utf8');
+/** As readBytesFile, as UTF-8 text; other bytes are refused. */
+export function readTextFile(path: string, expected: string, remedy: string): string {
+  const bytes = readBytesFile(path, expected, remedy);
+  try {
+    return new TextDecoder('utf-8', { fatal: true }).decode(bytes);
+  } catch (cause) {
+    throw new TrainError(
+      'file',
+      `${path}: expected ${expected} as text in UTF-8, got other bytes; check that it is the right file, or save it as UTF-8`,
+      { cause },
+    );
+  }
 }
 
 /**

@@ -8,5 +8,5 @@ import { readTextFile } from './key-file.ts';
  * throws  TrainError 'file' where it cannot be read, ProtocolError 'site-file' with line and field where it is not right
  */
 export function readSite(path: string): Site {
-  return parseSite(readTextFile(path, 'a site file; make a first one with `stillwell site --history …`'), path);
+  return parseSite(readTextFile(path, 'a site file', 'make a first one with `stillwell site --history …`'), path);
 }

@@ -19,7 +19,11 @@ describe('key files', () => {
   });
 
   test.each([
-    ['no JSON', 'ssh-ed25519 AAAA', 'expected a key file (JSON text as `stillwell keys` writes it)'],
+    [
+      'no JSON',
+      'ssh-ed25519 AAAA',
+      'expected a key file (JSON text), got something else; give a file that `stillwell keys new` wrote',
+    ],
     ['a list', '[]', 'got another JSON value'],
     ['nothing', '', 'expected a key file'],
     ['a field too many', fields({ secret: 'x' }), '"secret" is not a field of a key file (kind, id, public, private)'],
