@@ -22,6 +22,12 @@ export function seconds(text: string): number {
   return value;
 }
 
+/** A parser for a reason that a person gives, to be kept in a bundle. */
+export function reason(text: string): string {
+  if (text.trim() === '') throw new InvalidArgumentError('Expected the reason in words.');
+  return text;
+}
+
 /** Gathers a repeated option. */
 export function several(text: string, before: readonly string[] | undefined): string[] {
   return [...(before ?? []), text];

@@ -10,7 +10,7 @@ const LOCAL = /^(\d{4}-\d\d-\d\d)(?:[T ](\d\d:\d\d)(:\d\d)?)?$/;
  *
  * throws  TrainError 'options' naming the option, expected and got
  */
-export function timeOption(option: string, text: string | undefined, zone: string): number | undefined {
+function timeOption(option: string, text: string | undefined, zone: string): number | undefined {
   if (text === undefined) return undefined;
   const instant = parseInstant(text);
   if (instant !== null) return instant;
@@ -26,4 +26,27 @@ export function timeOption(option: string, text: string | undefined, zone: strin
   const out: Resolved = { utcMs: 0, kind: 'plain', changeMs: 0 };
   new ZoneRules(zone).resolve(asUtc, Number.NEGATIVE_INFINITY, false, out);
   return out.utcMs;
+}
+
+/** Where the readings asked for start and end, as far as it was said. */
+export interface TimeSpan {
+  readonly fromMs?: number;
+  readonly untilMs?: number;
+}
+
+/**
+ * The options `--from` and `--until` together.
+ *
+ * throws  TrainError 'options' as timeOption does, and when nothing lies between them
+ */
+export function timeSpan(options: { readonly from?: string; readonly until?: string }, zone: string): TimeSpan {
+  const fromMs = timeOption('--from', options.from, zone);
+  const untilMs = timeOption('--until', options.until, zone);
+  if (fromMs !== undefined && untilMs !== undefined && fromMs >= untilMs) {
+    throw new TrainError(
+      'options',
+      `--until: expected a time after --from (${options.from}), got ${options.until}; change one of them`,
+    );
+  }
+  return { ...(fromMs === undefined ? {} : { fromMs }), ...(untilMs === undefined ? {} : { untilMs }) };
 }

@@ -5,13 +5,13 @@ import { Command, InvalidArgumentError } from 'commander';
 import { fitSummary } from '../fit-summary.ts';
 import { type LoadedHistory, loadHistory } from '../history/load.ts';
 import { hindcastJson } from '../judge/hindcast-json.ts';
-import { several, wholeNumber } from '../option-values.ts';
+import { reason, several, wholeNumber } from '../option-values.ts';
 import { writeOutput } from '../output-file.ts';
 import { FIT_DEFAULTS, type FitResult, fit } from '../pipeline.ts';
 import { createProgress } from '../progress.ts';
 import { fitReport } from '../report/page.ts';
 import { readSite } from '../site-file.ts';
-import { timeOption } from '../time-option.ts';
+import { timeSpan } from '../time-option.ts';
 
 interface FitCommandOptions {
   readonly site: string;
@@ -44,7 +44,7 @@ export function fitCommand(): Command {
     .option('--max-bytes <bytes>', 'largest bundle document', wholeNumber(2048, 65_536), FIT_DEFAULTS.maxBytes)
     .option('--use-all', 'after judging, learn once more from the whole history', false)
     .option('--seed <number>', 'seed of everything drawn', wholeNumber(0, 2 ** 32 - 1), FIT_DEFAULTS.seed)
-    .option('--override <reason>', 'why it may be sealed though it shows no skill; stands in the bundle')
+    .option('--override <reason>', 'why it may be sealed though it shows no skill; stands in the bundle', reason)
     .option('--json', 'the result as JSON', false)
     .addHelpText(
       'after',
@@ -79,16 +79,10 @@ async function run(options: FitCommandOptions): Promise<void> {
 }
 
 async function load(site: Site, options: FitCommandOptions): Promise<LoadedHistory> {
+  const span = timeSpan(options, site.timeZone);
   const progress = createProgress('reading');
-  const fromMs = timeOption('--from', options.from, site.timeZone);
-  const untilMs = timeOption('--until', options.until, site.timeZone);
   try {
-    return await loadHistory(options.history, site, {
-      zone: options.timeZone ?? null,
-      ...(fromMs === undefined ? {} : { fromMs }),
-      ...(untilMs === undefined ? {} : { untilMs }),
-      progress,
-    });
+    return await loadHistory(options.history, site, { zone: options.timeZone ?? null, ...span, progress });
   } finally {
     progress.end();
   }

@@ -15,7 +15,7 @@ import { createProgress } from '../progress.ts';
 import { readSite } from '../site-file.ts';
 import type { TickSpan } from '../span.ts';
 import { shortNumber, textTable } from '../text-table.ts';
-import { timeOption } from '../time-option.ts';
+import { timeSpan } from '../time-option.ts';
 
 interface HindcastOptions {
   readonly bundle: string;
@@ -58,8 +58,8 @@ async function run(options: HindcastOptions): Promise<void> {
       `${options.bundle} was made for other readings than ${options.site} declares: ${difference}`,
     );
   }
+  const { fromMs, untilMs } = timeSpan(options, site.timeZone);
   const progress = createProgress('reading');
-  const untilMs = timeOption('--until', options.until, site.timeZone);
   const { series } = await loadHistory(options.history, site, {
     zone: options.timeZone ?? null,
     ...(untilMs === undefined ? {} : { untilMs }),
@@ -67,9 +67,9 @@ async function run(options: HindcastOptions): Promise<void> {
   });
   progress.end();
   const learned = learnedSpans(bundle);
-  const fromMs = timeOption('--from', options.from, site.timeZone);
   const fromTick = fromMs === undefined ? learned.end : Math.ceil(fromMs / series.tickMs);
   const span = judgedSpan(series, bundle, fromTick, fromMs !== undefined);
+  refuseUnread(series, span, options.history);
   const units = bundle.channels.map((channel) => channel.unit);
   const cast = hindcast(model, series, { ...span, learn: learned.learn }, units);
   const head = { bundle: Buffer.from(digest).toString('hex'), site: bundle.site, advisory: ADVISORY };
@@ -112,6 +112,18 @@ function judgedSpan(series: Series, bundle: Bundle, asked: number, isAsked: bool
     `The history ends at ${time(end, series.tickMs)}; expected at least ${bundle.horizon} ticks (one horizon) after ` +
       `${time(asked, series.tickMs)}, ${why}, got ${Math.max(0, end - fromTick)}. Give later history, or an earlier --from.`,
     { details: { from: asked, end } },
+  );
+}
+
+/** A table of dashes would look like an answer. */
+function refuseUnread(series: Series, span: TickSpan, files: readonly string[]): void {
+  const signals = series.values.slice(0, series.signalCount);
+  const [from, to] = [span.fromTick - series.firstTick, span.toTick - series.firstTick];
+  if (signals.some((values) => values.subarray(from, to).some((value) => !Number.isNaN(value)))) return;
+  throw new TrainError(
+    'history',
+    `${files.join(', ')}: expected readings of at least one signal from ${time(span.fromTick, series.tickMs)} to ` +
+      `${time(span.toTick, series.tickMs)} to judge by, got none; check the columns, or give another --from`,
   );
 }
 

@@ -6,13 +6,13 @@ import { openBundleFile } from '../bundle-file.ts';
 import { fitSummary } from '../fit-summary.ts';
 import type { History } from '../history/history.ts';
 import { hindcastJson } from '../judge/hindcast-json.ts';
-import { several, wholeNumber } from '../option-values.ts';
+import { reason, several, wholeNumber } from '../option-values.ts';
 import { writeOutput } from '../output-file.ts';
 import { createProgress } from '../progress.ts';
 import type { RefitResult } from '../refit/refit.ts';
 import { readSite } from '../site-file.ts';
 import { shortNumber, textTable } from '../text-table.ts';
-import { timeOption } from '../time-option.ts';
+import { type TimeSpan, timeSpan } from '../time-option.ts';
 
 interface RefitCommandOptions {
   readonly archive: string;
@@ -49,7 +49,7 @@ export function refitCommand(): Command {
     .option('--max-bytes <bytes>', 'largest bundle document', wholeNumber(2048, 65_536), 24 * 1024)
     .option('--no-use-all', 'ship the model as judged instead of learning once more from everything')
     .option('--seed <number>', 'seed of everything drawn', wholeNumber(0, 2 ** 32 - 1), 1)
-    .option('--override <reason>', 'why it may be sealed though it shows no skill; stands in the bundle')
+    .option('--override <reason>', 'why it may be sealed though it shows no skill; stands in the bundle', reason)
     .option('--json', 'the result as JSON', false)
     .addHelpText(
       'after',
@@ -61,11 +61,11 @@ export function refitCommand(): Command {
 async function run(options: RefitCommandOptions): Promise<void> {
   const site = readSite(options.site);
   const previous = options.previous === undefined ? null : openBundleFile(options.previous);
-  const fromMs = timeOption('--from', options.from, site.timeZone);
-  const untilMs = timeOption('--until', options.until, site.timeZone);
+  const span = timeSpan(options, site.timeZone);
+  const { fromMs, untilMs } = span;
   const [{ readArchive }, { refit }] = await Promise.all([import('../desk/archive.ts'), import('../refit/refit.ts')]);
   const archive = await readArchive(options.archive, site.site);
-  const files = await readFiles(site, options, fromMs, untilMs);
+  const files = await readFiles(site, options, span);
   const progress = createProgress('refitting', 'steps');
   let steps = 0;
   const result = await refit(
@@ -95,22 +95,12 @@ async function run(options: RefitCommandOptions): Promise<void> {
   );
 }
 
-async function readFiles(
-  site: Site,
-  options: RefitCommandOptions,
-  fromMs: number | undefined,
-  untilMs: number | undefined,
-): Promise<History | null> {
+async function readFiles(site: Site, options: RefitCommandOptions, span: TimeSpan): Promise<History | null> {
   if (options.history === undefined) return null;
   const { readHistory } = await import('../history/read.ts');
   const progress = createProgress('reading');
   try {
-    return await readHistory(options.history, site, {
-      zone: options.timeZone ?? null,
-      ...(fromMs === undefined ? {} : { fromMs }),
-      ...(untilMs === undefined ? {} : { untilMs }),
-      progress,
-    });
+    return await readHistory(options.history, site, { zone: options.timeZone ?? null, ...span, progress });
   } finally {
     progress.end();
   }

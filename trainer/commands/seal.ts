@@ -4,7 +4,7 @@ import { Command } from 'commander';
 import { hex, openBundleFile } from '../bundle-file.ts';
 import { TrainError } from '../errors.ts';
 import { readPrivateKey, refuseToReplace } from '../key-file.ts';
-import { wholeNumber } from '../option-values.ts';
+import { reason, wholeNumber } from '../option-values.ts';
 import { nextNumbers, sealCandidate } from '../seal-candidate.ts';
 
 interface SealCommandOptions {
@@ -33,7 +33,7 @@ export function sealCommand(): Command {
     .option('--after <bundle>', 'bundle that it follows: the sequence is one above that one')
     .option('--sequence <n>', 'sequence number; only ever rises within a key epoch (default 1)', wholeNumber(1))
     .option('--epoch <n>', 'key epoch; a rotation of keys starts a new one (default 1)', wholeNumber(0, 2 ** 32 - 1))
-    .option('--override <reason>', 'seal although the judge found no skill; the reason stands in the bundle')
+    .option('--override <reason>', 'seal although the judge found no skill; the reason stands in the bundle', reason)
     .option('--max-bytes <n>', 'largest sealed bundle (default 24576)', wholeNumber(1))
     .option('--force', 'replace --out if it is there already', false)
     .option('--json', 'say what was sealed as JSON', false)

@@ -43,7 +43,7 @@ export function findSeparator(path: string, head: string): string {
   if (found.length === 0)
     throw refusal(
       { file: path, line: 1 },
-      'a header with a time column and at least one more, separated by comma, semicolon or tab',
+      'a header with a time column and at least one more, separated by comma, semicolon, tab or |',
       shown(header),
       'check the separator, and that this is the right file',
     );

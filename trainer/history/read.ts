@@ -15,6 +15,7 @@ import type { FileRead, History } from './history.ts';
 import { type InputFile, inspectFile, readBlocks } from './input-file.ts';
 import { refusal, shown } from './refusal.ts';
 import { TimeReader } from './times.ts';
+import { checkZone } from './zone.ts';
 
 /** How to read a history. */
 export interface ReadOptions {
@@ -98,6 +99,7 @@ function listed(names: readonly string[]): string {
 export async function readHistory(files: readonly string[], site: Site, options: ReadOptions): Promise<History> {
   if (files.length === 0)
     throw new TrainError('options', 'history: expected at least one file, got none; name them after --history');
+  if (options.zone !== null) checkZone(options.zone);
   const inputs = files.map(inspectFile);
   const totalBytes = inputs.reduce((sum, input) => sum + input.bytes, 0);
   const channels = channelsOf(site);

@@ -3,6 +3,7 @@
  * not. A person is expected to go over it; the comments say where.
  */
 import { DEFAULT_RESIDUAL_BYTES_PER_DAY, DEFAULT_ROOT, type Signal, type Site } from '@stillwell/protocol';
+import { TrainError } from '../errors.ts';
 import type { Progress } from '../progress.ts';
 import { cadenceOf, suggestTick } from './cadence.ts';
 import { type Discovered, discoverSignals } from './discover.ts';
@@ -152,6 +153,11 @@ export async function draftSite(files: readonly string[], options: DraftOptions)
   const progress = options.progress === undefined ? {} : { progress: options.progress };
   const history = await readHistory(files, rough, { zone: options.zone, requireZone: true, ...progress });
   const intervals = history.channels.map((channel) => cadenceOf(channel, timeOrder(channel.times)).intervalMs);
+  if (!intervals.some((ms) => ms > 0))
+    throw new TrainError(
+      'history',
+      `${files.join(', ')}: expected readings at two times at least, to tell how often they come, got one time alone; give a longer history`,
+    );
   const tickMs = suggestTick(intervals);
   const site: Site = {
     ...rough,

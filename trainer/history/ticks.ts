@@ -101,7 +101,7 @@ export function layOnTicks(
   if (span === null || ticks < 2)
     throw new TrainError(
       'history',
-      `${names}: expected readings over at least two ticks of ${tickMs / 1000} s, got ${span === null ? 'none' : 'one tick'} in the time asked for; give a longer history or a shorter tick`,
+      `${names}: expected readings over at least two ticks of ${tickMs / 1000} s, got ${span === null ? 'none' : 'one tick'} in the time asked for; give a longer history, a shorter tick, or other times to start and end at`,
     );
   if (ticks > FEW_TICKS && ticks / span.readings > MOST_EMPTY)
     throw new TrainError(

@@ -49,6 +49,15 @@ function offsetReader(zone: string): (utcMs: number) => number {
   };
 }
 
+/**
+ * Refuses a zone that is not known, though no time may need it: a mistyped one must not pass unseen.
+ *
+ * throws  TrainError 'options'
+ */
+export function checkZone(zone: string): void {
+  if (!FIXED.test(zone)) offsetReader(zone);
+}
+
 /** A local time's place on the UTC axis. */
 export interface Resolved {
   utcMs: number;

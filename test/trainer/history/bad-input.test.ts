@@ -67,7 +67,7 @@ describe('what is no history file at all', () => {
 describe('a header that is not right', () => {
   it('names a separator it cannot find, and a column named twice or not at all', async () => {
     expect(await refusalOf(file('time level flow\n1 2 3\n'))).toMatch(
-      /:1: expected a header with a time column.*separated by comma, semicolon or tab, got "time level flow"/,
+      /:1: expected a header with a time column.*separated by comma, semicolon, tab or \|, got "time level flow"/,
     );
     expect(await refusalOf(file(`time,level,level\n${ROW}`))).toMatch(
       /:1, column "level": expected each column name once, got it in columns 2 and 3/,
