@@ -59,9 +59,19 @@ export function openBundleFile(path: string): OpenDocument & { readonly envelope
     const { bytes, envelope } = documentOf(content, path);
     return { ...openDocument(bytes), envelope };
   } catch (cause) {
-    const message = (cause as Error).message;
-    throw new TrainError('bundle', message.startsWith(path) ? message : `${path}: ${message}`, { cause });
+    throw new TrainError('bundle', refusalText(path, cause as Error), { cause });
   }
+}
+
+/** Bytes that are no MessagePack at all are another file, or a candidate that was damaged: only its reader can tell. */
+function refusalText(path: string, cause: Error): string {
+  if (cause instanceof ProtocolError && ['scan', 'decode'].includes(cause.code)) {
+    return (
+      `${path}: expected a bundle (.swb) or a candidate (.swc), got bytes that are neither (${cause.message}); ` +
+      'check that it is the right file, get it again, or fit again'
+    );
+  }
+  return cause.message.startsWith(path) ? cause.message : `${path}: ${cause.message}`;
 }
 
 /**

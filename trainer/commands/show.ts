@@ -26,7 +26,7 @@ export function showCommand(): Command {
 function show(file: string, options: ShowOptions): void {
   const content = readBytesFile(file, 'a bundle (.swb), a candidate (.swc) or a segment');
   if (Buffer.from(content.subarray(0, 4)).toString('latin1') === SEGMENT_MAGIC) {
-    const facts = segmentFacts(content);
+    const facts = segmentFactsOf(file, content);
     print(options.json, { what: 'segment', file, ...facts }, segmentText(facts));
     return;
   }
@@ -57,6 +57,16 @@ function show(file: string, options: ShowOptions): void {
     { what: seal ? 'bundle' : 'candidate', file, seal, probe: probe ?? 'holds', ...facts },
     lines.join('\n'),
   );
+}
+
+function segmentFactsOf(file: string, content: Uint8Array): ReturnType<typeof segmentFacts> {
+  try {
+    return segmentFacts(content);
+  } catch (cause) {
+    throw new TrainError('file', `${file}: ${(cause as Error).message}; get it again from the gateway or the archive`, {
+      cause,
+    });
+  }
 }
 
 /** @returns 'holds', or 'not verified' without a key to verify with. */
