@@ -45,6 +45,7 @@ export interface DeskSite {
   readonly corrections: number;
 }
 
+/** Where a fleet keeps its logs, and whom it tells what it hears. */
 export interface FleetOptions {
   readonly folder: string;
   /** Every how many-th segment message is sent a second time, as a broker may; 0 for none. */

@@ -17,6 +17,7 @@ export interface ReadingSource {
 /** Publishes one message, QoS 1; resolves when the broker has it. */
 export type Publish = (topic: string, payload: string) => Promise<void>;
 
+/** What a play sends, to whom, and how far ahead of the answers. */
 export interface PlayOptions {
   readonly description: SiteDescription;
   readonly source: ReadingSource;

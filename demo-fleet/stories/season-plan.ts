@@ -6,7 +6,9 @@ import type { LogHabit } from '../history-files.ts';
 
 /** A Monday; the zones of the sites have no clock changes. */
 export const PLAY_MS = Date.UTC(2025, 3, 28);
+/** Days of log before play: enough for weekly habits to show, few enough to fit in seconds. */
 export const HISTORY_DAYS = 24;
+/** Days of play unless asked otherwise. */
 export const DEFAULT_DAYS = 4;
 /** How the sites' logs are kept, in the order of the sites. */
 export const HABITS: readonly LogHabit[] = ['wide-utc', 'long', 'wide-utc', 'wide-local', 'wide-utc', 'long'];
@@ -24,9 +26,11 @@ export const DOUBLE_EVERY = 7;
 export const segmentTicks = (ticksPerDay: number): number => Math.max(144, Math.round(ticksPerDay / 8));
 /** The plant that wears, and how far it is gone: its pumps have lost nearly a fifth of their head. */
 export const WORN_SITE = 'brackwith';
+/** How far gone the pumps are, of 1. */
 export const WEAR = 0.6;
 /** Sites whose gateway loses power, and whose link is cut. */
 export const POWER_CUT_SITE = 'quennadale';
+/** The site whose link is cut. */
 export const LINK_CUT_SITE = 'ellerquint';
 
 /** Days from the start of play. */
