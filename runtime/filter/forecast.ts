@@ -1,12 +1,12 @@
 /**
- * Forecasts from the state: z(t+h) = z(t) + Σ_k B[h−1, k] coefficient k. A signal without readings for longer than the
- * horizon H fades to its seasonal mean: with `age` the ticks since its last reading, the distance to that mean keeps its
- * size up to age H and falls linearly to nothing at age 2H, because iterating a fitted recursion without readings need
+ * Forecasts from the state: z(t+h) = z(t) + Σ_k B[h−1, k] coefficient k. A signal without readings for longer than F =
+ * fadeTicks fades to its seasonal mean: with `age` the ticks since its last reading, the distance to that mean keeps its
+ * size up to age F and falls linearly to nothing at age 2F, because iterating a fitted recursion without readings need
  * not be stable. Step 1 of the path is the number that stands in for a missing reading at the next tick.
  */
 import { multiply } from './dense.ts';
 import type { LinearModel } from './model.ts';
-import type { FilterState } from './state.ts';
+import { type FilterState, fadeTicks } from './state.ts';
 
 /**
  * Forecasts of one signal for steps 1 … `steps`, faded and clipped.
@@ -27,7 +27,7 @@ export function stepsAhead(
   multiply(model.horizonBasis, steps, r, state.coefficients, signal * r, out, at);
   const now = state.value[signal];
   for (let h = 0; h < steps; h++) out[at + h] = now + out[at + h];
-  if (state.age[signal] + steps > model.horizon) fade(model, state, signal, steps, out, at);
+  if (state.age[signal] + steps > fadeTicks(model)) fade(model, state, signal, steps, out, at);
   const low = state.low[signal];
   const high = state.high[signal];
   for (let h = 0; h < steps; h++) {
@@ -45,12 +45,12 @@ function fade(
   out: Float64Array,
   at: number,
 ): void {
-  const H = model.horizon;
-  const end = 2 * H;
+  const F = fadeTicks(model);
+  const end = 2 * F;
   const age = state.age[signal];
-  const left = end - Math.max(H, age);
+  const left = end - Math.max(F, age);
   for (let h = 1; h <= steps; h++) {
-    if (age + h <= H) continue;
+    if (age + h <= F) continue;
     const mean = model.seasonal[seasonalCell(model, signal, state.tick + h)];
     // The state has itself been faded up to `age`: only what is lost since counts.
     const kept = left === 0 ? 0 : Math.max(0, end - (age + h)) / left;

@@ -18,7 +18,7 @@ import { crc32 } from './checksum.ts';
 import { FilterError } from './errors.ts';
 import { type Bounds, createBounds } from './interval.ts';
 import type { LinearModel } from './model.ts';
-import { createState, type FilterState, refresh } from './state.ts';
+import { createState, type FilterState, fadeTicks, refresh } from './state.ts';
 
 const VERSION = 1;
 const HEAD = 20;
@@ -67,7 +67,7 @@ export function restoreState(model: LinearModel, bytes: Uint8Array): FilterState
     state.passed[c] = view.getUint16(at + 1, true);
     state.age[c] = view.getUint32(at + 3, true);
     const isInRange =
-      state.started[c] <= 1 && state.passed[c] <= model.rejectMaxTicks && state.age[c] <= 2 * model.horizon;
+      state.started[c] <= 1 && state.passed[c] <= model.rejectMaxTicks && state.age[c] <= 2 * fadeTicks(model);
     if (!isInRange) throw refusal('state', `channel ${c}`, 'counters in range', 'one beyond it');
     at = getFloats(view, at + 7, state.value, c, c + 1);
     at = getFloats(view, at, state.memory, c * memoryCount, (c + 1) * memoryCount);

@@ -13,6 +13,17 @@ export const FOLDED = 1;
 /** Values of `observed`: a reading came but lay too far from its forecast, and was passed over. */
 export const PASSED_OVER = 2;
 
+/** Shortest fade: with a horizon of a tick or two, one missed reading would throw the forecast onto the seasonal mean. */
+const LEAST_FADE_TICKS = 8;
+
+/**
+ * Ticks without a reading after which a signal's forecast begins to fade to its seasonal mean, over as many again: the
+ * horizon, or 8 where that is shorter.
+ */
+export function fadeTicks(model: LinearModel): number {
+  return Math.max(model.horizon, LEAST_FADE_TICKS);
+}
+
 /**
  * The filter's buffers: written by `update` in place, once a tick; read by everything else.
  *
@@ -34,7 +45,7 @@ export interface FilterState {
   readonly observed: Uint8Array;
   /** (nc) 1 once a reading has been folded in. */
   readonly started: Uint8Array;
-  /** (nc) ticks since a reading was folded in; counts up to 2 × horizon, which also stands for "never". */
+  /** (nc) ticks since a reading was folded in; counts up to 2 × fadeTicks, which also stands for "never". */
   readonly age: Int32Array;
   /** (nc) readings passed over, less those that came near their forecast since; 0 to rejectMaxTicks, where the guard opens. */
   readonly passed: Int32Array;
@@ -74,7 +85,7 @@ export function createState(model: LinearModel): FilterState {
     innovation: new Float64Array(nc).fill(Number.NaN),
     observed: new Uint8Array(nc),
     started: new Uint8Array(nc),
-    age: new Int32Array(nc).fill(2 * model.horizon),
+    age: new Int32Array(nc).fill(2 * fadeTicks(model)),
     passed: new Int32Array(nc),
     memory: new Float64Array(nc * bank.memoryCount),
     ring: new Float64Array(nc * bank.ringLength),

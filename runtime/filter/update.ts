@@ -7,7 +7,7 @@ import { advanceChannel, settleChannel } from './bank.ts';
 import { FilterError } from './errors.ts';
 import { predictStandardised } from './forecast.ts';
 import type { LinearModel } from './model.ts';
-import { type FilterState, FOLDED, MISSING, PASSED_OVER, refresh } from './state.ts';
+import { type FilterState, FOLDED, fadeTicks, MISSING, PASSED_OVER, refresh } from './state.ts';
 
 /**
  * Folds one tick into the state, in place. A NaN or infinite reading counts as missing.
@@ -85,7 +85,7 @@ function missed(model: LinearModel, state: FilterState, c: number): void {
 
 /** Folds the one-step forecast in, in the place of a reading. */
 function replace(model: LinearModel, state: FilterState, c: number): void {
-  if (state.age[c] < 2 * model.horizon) state.age[c]++;
+  if (state.age[c] < 2 * fadeTicks(model)) state.age[c]++;
   state.value[c] = state.predicted[c];
   advanceChannel(model, state.bank, state.memory, state.value, c);
 }

@@ -39,9 +39,10 @@ export function calibrate(model: LinearModel, series: Series, span: TickSpan, co
   const counts = new Int32Array(ny * H);
   const first: number[][] = Array.from({ length: nc }, () => []);
   const stayed: number[][] = Array.from({ length: ny }, () => []);
+  // Step 2 of a path of one step stands at step 1: for telling a jump that stays from a spike that is near enough.
   const errorAt = (i: number, median: Float64Array, at: number, h: number): number => {
     const clipped = Math.min(model.clipHigh[i], Math.max(model.clipLow[i], series.values[i][at + h]));
-    return (clipped - median[i * H + h - 1]) / model.scale[i];
+    return (clipped - median[i * H + Math.min(h, H) - 1]) / model.scale[i];
   };
   replay(model, series, { fromTick: span.fromTick - 1, toTick: span.toTick - 1 }, ({ at, state, median }) => {
     for (let c = ny; c < nc; c++)
@@ -49,7 +50,7 @@ export function calibrate(model: LinearModel, series: Series, span: TickSpan, co
     for (let i = 0; i < ny; i++) {
       const error = errorAt(i, median, at, 1);
       first[i].push(Math.abs(error));
-      if (H > 1 && at + 2 < span.toTick) {
+      if (at + 2 < span.toTick) {
         const next = errorAt(i, median, at, 2);
         stayed[i].push(error * next > 0 ? Math.min(Math.abs(error), Math.abs(next)) : 0);
       }

@@ -4,6 +4,8 @@ import {
   forecastPath,
   type LinearModel,
   predictNext,
+  restoreState,
+  saveState,
   update,
 } from '@stillwell/runtime/filter';
 import { describe, expect, test } from 'vitest';
@@ -116,6 +118,21 @@ describe('forecasts', () => {
       const expected = mean + ((H - h) / H) * (start - mean);
       expect((path[h - 1] - calm.mean[0]) / calm.scale[0]).toBeCloseTo(expected, 12);
     }
+  });
+
+  test('with a horizon of one tick, a reading missed does not throw the forecast onto the seasonal mean', () => {
+    const short = syntheticModel({ inputs: ['valve'], horizon: 1 });
+    const calm = { ...short, readout: new Float64Array(short.readout.length) };
+    const state = run(calm, [Float64Array.of(14, 13, 16)]);
+    const start = state.value[0];
+    const absent = new Float64Array(3).fill(Number.NaN);
+    for (let age = 1; age <= 8; age++) {
+      update(calm, state, age, absent);
+      expect(state.value[0]).toBe(start);
+    }
+    for (let age = 9; age <= 16; age++) update(calm, state, age, absent);
+    expect(state.value[0]).toBe(calm.seasonal[16]);
+    expect(restoreState(calm, saveState(calm, state)).value).toEqual(state.value);
   });
 
   test('the distance falls by the same amount every tick, on the path as in the state', () => {
