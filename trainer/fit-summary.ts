@@ -23,7 +23,8 @@ export function fitSummary(result: FitResult): string {
     percent(verdict.coverage),
   ]);
   const right = head.flatMap((_, k) => (k > 0 && k !== verdicts.horizons.length + 2 ? [k] : []));
-  const rounding = `${((audit.ratio - 1) * 100).toFixed(2)} %`;
+  // Rounded first, and 0 added, so that nothing reads -0.00.
+  const rounding = `${(Math.round((audit.ratio - 1) * 1e4) / 100 + 0).toFixed(2)} %`;
   return [
     `Skill on ${hindcast.origins} origins of the judged part (squared error below the best obvious guess; 0 % is no better):`,
     textTable(head, rows, right),

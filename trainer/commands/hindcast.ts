@@ -4,8 +4,9 @@ import { ADVISORY, describeSchemaDifference } from '@stillwell/protocol';
 import { Command } from 'commander';
 import { openBundleFile } from '../bundle-file.ts';
 import { TrainError } from '../errors.ts';
-import { loadHistory } from '../history/load.ts';
+import { readHistory } from '../history/read.ts';
 import type { Series } from '../history/series.ts';
+import { layOnTicks } from '../history/ticks.ts';
 import { verdictSteps } from '../judge/gate.ts';
 import { type Hindcast, hindcast } from '../judge/hindcast.ts';
 import { hindcastJson } from '../judge/hindcast-json.ts';
@@ -60,24 +61,41 @@ async function run(options: HindcastOptions): Promise<void> {
   }
   const { fromMs, untilMs } = timeSpan(options, site.timeZone);
   const progress = createProgress('reading');
-  const { series } = await loadHistory(options.history, site, {
+  const history = await readHistory(options.history, site, {
     zone: options.timeZone ?? null,
     ...(untilMs === undefined ? {} : { untilMs }),
     progress,
   });
   progress.end();
+  // On the bundle's lattices, as the gateway would take them, whatever this history alone would show.
+  const series = layOnTicks(
+    history,
+    site,
+    bundle.channels.map((channel) => channel.lattice),
+  );
   const learned = learnedSpans(bundle);
   const fromTick = fromMs === undefined ? learned.end : Math.ceil(fromMs / series.tickMs);
   const span = judgedSpan(series, bundle, fromTick, fromMs !== undefined);
   refuseUnread(series, span, options.history);
   const units = bundle.channels.map((channel) => channel.unit);
   const cast = hindcast(model, series, { ...span, learn: learned.learn }, units);
-  const head = { bundle: Buffer.from(digest).toString('hex'), site: bundle.site, advisory: ADVISORY };
+  const seenShare = Math.max(0, Math.min(1, (learned.end - span.fromTick) / (span.toTick - span.fromTick)));
+  const head = {
+    bundle: Buffer.from(digest).toString('hex'),
+    site: bundle.site,
+    advisory: ADVISORY,
+    seen_share: seenShare,
+  };
   process.stdout.write(
     options.json
       ? `${JSON.stringify({ ...head, ...hindcastJson(cast) }, null, 2)}\n`
-      : `${tableText(cast)}\n\n${ADVISORY}\n`,
+      : `${tableText(cast)}\n${seenText(seenShare)}\n${ADVISORY}\n`,
   );
+}
+
+function seenText(share: number): string {
+  if (share === 0) return '';
+  return `Note: ${percent(share)} of the judged time is time the bundle learned or was calibrated from, which flatters it.\n`;
 }
 
 /** Where the bundle learned, and the first tick it has not seen; from its provenance. */

@@ -45,6 +45,7 @@ function plant(horizon = 12): { at: (name: string) => string; site: string; hist
 
 interface HindcastText {
   readonly from: string;
+  readonly seen_share: number;
   readonly average: { readonly mse_standardised: number };
   readonly signals: readonly { readonly signal: string; readonly horizons: readonly { readonly mse: number }[] }[];
 }
@@ -63,7 +64,12 @@ describe('fit and hindcast', () => {
     expect(scored.average).toEqual(written.average);
     expect(scored.signals).toEqual(written.signals);
     expect(scored.signals[1]!.signal).toBe('flow');
-    expect(await run(hindcastCommand(), ...bundle, '--from', '2024-02-05')).toMatch(/2024-02-05T00:00:00/);
+    expect(scored.seen_share).toBe(0);
+    // 2024-01-27 is tick 624: 96 ticks before 720, the first unseen one, of 276 judged.
+    expect(await run(hindcastCommand(), ...bundle, '--from', '2024-01-27')).toMatch(
+      /2024-01-27T00:00:00[\s\S]*Note: 34\.8 % of the judged time is time the bundle learned or was calibrated from/,
+    );
+    expect(await run(hindcastCommand(), ...bundle, '--from', '2024-02-05')).not.toMatch(/Note:/);
   });
 
   it('cuts the history where it is told, and learns nothing from beyond', async () => {
