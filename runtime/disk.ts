@@ -7,7 +7,6 @@ import {
   fsync,
   fsyncSync,
   ftruncateSync,
-  mkdirSync,
   openSync,
   readdirSync,
   readFileSync,
@@ -16,7 +15,7 @@ import {
   statSync,
 } from 'node:fs';
 import { basename, dirname, join } from 'node:path';
-import { syncFolder, writeFully } from './files.ts';
+import { makeFolder, syncFolder, writeFully } from './files.ts';
 
 /** A file that only grows. */
 export interface AppendFile {
@@ -109,7 +108,7 @@ class NodeAppendFile implements AppendFile {
 
 /** The machine's own disk. */
 export const nodeDisk: Disk = {
-  makeFolder: (path) => void mkdirSync(path, { recursive: true }),
+  makeFolder,
   read(path) {
     try {
       // A plain array: a Buffer's slice would be a view where everyone expects a copy.

@@ -1,10 +1,9 @@
 /** `stillwell keys`: makes the key pair that bundles are sealed with, and says what a key file is. */
 import { createKeyPair, formatKey, isKeyPair, keyIdOf, publicHalf } from '@stillwell/protocol';
-import { replaceFile } from '@stillwell/runtime/files';
 import { Command, Option } from 'commander';
 import { hex } from '../bundle-file.ts';
-import { TrainError } from '../errors.ts';
 import { readKey, refuseToReplace } from '../key-file.ts';
+import { writeOutputs } from '../output-file.ts';
 
 interface NewOptions {
   readonly kind: 'author' | 'rollout';
@@ -46,14 +45,10 @@ function makeKeys(options: NewOptions): void {
   refuseToReplace(options.out, options.force);
   refuseToReplace(publicFile, options.force);
   const pair = createKeyPair(undefined, options.kind);
-  try {
-    replaceFile(options.out, formatKey(pair), 0o600);
-    replaceFile(publicFile, formatKey(publicHalf(pair)), 0o644);
-  } catch (cause) {
-    throw new TrainError('file', `cannot write ${options.out} and ${publicFile}: ${(cause as Error).message}`, {
-      cause,
-    });
-  }
+  writeOutputs([
+    { path: options.out, bytes: formatKey(pair), mode: 0o600 },
+    { path: publicFile, bytes: formatKey(publicHalf(pair)) },
+  ]);
   const id = hex(keyIdOf(pair.publicKey));
   if (options.json) {
     process.stdout.write(`${JSON.stringify({ kind: options.kind, id, private: options.out, public: publicFile })}\n`);

@@ -1,10 +1,10 @@
 /** `stillwell seal`: signs a candidate under the next sequence number. */
-import { replaceFile } from '@stillwell/runtime/files';
 import { Command } from 'commander';
 import { hex, openBundleFile } from '../bundle-file.ts';
 import { TrainError } from '../errors.ts';
 import { readPrivateKey, refuseToReplace } from '../key-file.ts';
 import { reason, wholeNumber } from '../option-values.ts';
+import { writeOutput } from '../output-file.ts';
 import { nextNumbers, sealCandidate } from '../seal-candidate.ts';
 
 interface SealCommandOptions {
@@ -56,11 +56,7 @@ function seal(options: SealCommandOptions): void {
   const override = options.override ?? null;
   const limit = options.maxBytes === undefined ? {} : { maxBytes: options.maxBytes };
   const made = sealCandidate(candidate, key, { ...numbers, override, ...limit }, options.candidate);
-  try {
-    replaceFile(options.out, made.sealed);
-  } catch (cause) {
-    throw new TrainError('file', `cannot write ${options.out}: ${(cause as Error).message}`, { cause });
-  }
+  writeOutput(options.out, made.sealed);
   const { judge, site } = made.bundle;
   const said = { site, digest: hex(made.digest), ...numbers, bytes: made.sealed.length, override: judge.override };
   process.stdout.write(

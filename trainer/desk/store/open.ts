@@ -2,11 +2,13 @@
  * Opens the desk's embedded store: one SQL file in write-ahead mode with full synchronisation, since a receipt makes the
  * gateway delete its copy and so must never leave before the commit has reached the disk.
  */
-import { existsSync, mkdirSync } from 'node:fs';
+import { existsSync } from 'node:fs';
 import { join } from 'node:path';
+import { makeFolder } from '@stillwell/runtime/files';
 import { Kysely, type SqliteDatabase, SqliteDialect } from 'kysely';
 import Database from 'libsql';
 import { TrainError } from '../../errors.ts';
+import { unwritable } from '../../output-file.ts';
 import { lockFolder } from './lock.ts';
 import { SCHEMA_STEPS, type Tables } from './schema.ts';
 
@@ -27,11 +29,9 @@ export interface Store {
  */
 export async function openStore(folder: string): Promise<Store> {
   try {
-    mkdirSync(folder, { recursive: true });
+    makeFolder(folder);
   } catch (cause) {
-    throw new TrainError('archive', `cannot make the desk's data folder ${folder}: ${(cause as Error).message}`, {
-      cause,
-    });
+    throw unwritable(folder, cause as Error);
   }
   const unlock = lockFolder(folder);
   try {
