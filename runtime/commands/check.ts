@@ -95,7 +95,7 @@ async function listen(
     await connection.firstConnect(CONNECT_MS);
     const protocol = connection.protocol === 5 ? '5' : '3.1.1';
     say(`broker    ${broker.url.replace(/\/\/[^@]*@/, '//')}: connected, MQTT ${protocol}`);
-    await connection.subscribe([...decoder.filters, topicsOf(site.root, site.site).bundle]);
+    await connection.subscribe([...decoder.filters, topicsOf(site.root, site.site).bundle], 1, CONNECT_MS);
     await new Promise((resolve) => setTimeout(resolve, seconds * 1000));
     return { protocol, heard };
   } finally {

@@ -104,7 +104,7 @@ class LastingConnection implements Connection {
     });
   }
 
-  subscribe(filters: readonly string[], qos: 0 | 1 = 1): Promise<void> {
+  subscribe(filters: readonly string[], qos: 0 | 1 = 1, patienceMs = Number.POSITIVE_INFINITY): Promise<void> {
     const granted = filters.map(
       (filter) =>
         new Promise<void>((resolve, reject) => {
@@ -114,7 +114,12 @@ class LastingConnection implements Connection {
         }),
     );
     if (this.#isConnected) this.#request(filters);
-    return Promise.all(granted).then(() => undefined);
+    const all = Promise.all(granted).then(() => undefined);
+    if (patienceMs === Number.POSITIVE_INFINITY) return all;
+    return new Promise((resolve, reject) => {
+      const timer = setTimeout(() => reject(this.#silent('to subscribing', patienceMs)), patienceMs);
+      all.then(resolve, reject).finally(() => clearTimeout(timer));
+    });
   }
 
   firstConnect(timeoutMs: number): Promise<void> {
@@ -122,7 +127,7 @@ class LastingConnection implements Connection {
     return new Promise((resolve, reject) => {
       const timer = setTimeout(() => {
         this.#firstWaiters.delete(waiter);
-        waiter.reject(new RuntimeError('broker', `broker ${this.#where()}: no answer within ${timeoutMs / 1000} s`));
+        waiter.reject(this.#silent('to connecting', timeoutMs));
       }, timeoutMs);
       const waiter: Waiter = {
         resolve: () => {
@@ -275,7 +280,8 @@ class LastingConnection implements Connection {
     const silentFallBack =
       !answered && this.#version === 4 && this.#options.protocol === 'auto' && this.#failures === 1;
     if (!silentFallBack) {
-      const error = new RuntimeError('broker', `broker ${this.#where()}: ${reason}`);
+      const advice = reason.includes('; check ') ? '' : "; check that address and port are a broker's, and its log";
+      const error = new RuntimeError('broker', `broker ${this.#where()}: ${reason}${advice}`);
       for (const waiter of this.#firstWaiters) waiter.reject(error);
       this.#firstWaiters.clear();
     }
@@ -319,6 +325,13 @@ class LastingConnection implements Connection {
         this.#options.onState?.({ kind: 'refused-subscription', filter, reason });
       });
     }
+  }
+
+  #silent(what: string, patienceMs: number): RuntimeError {
+    return new RuntimeError(
+      'broker',
+      `broker ${this.#where()}: no answer ${what} within ${patienceMs / 1000} s; check that address and port are a broker's`,
+    );
   }
 
   #brokerError(what: string, cause: Error): RuntimeError {

@@ -2,7 +2,7 @@
  * The byte stream under the MQTT client: TCP or TLS without Nagle's delay, and cut as soon as a packet announces itself
  * larger than we accept. The client advertises its limit but buffers what a careless or hostile peer sends all the same.
  */
-import { connect as connectTcp, type Socket } from 'node:net';
+import { connect as connectTcp, isIP, type Socket } from 'node:net';
 import { connect as connectTls } from 'node:tls';
 import { RuntimeError } from '../errors.ts';
 
@@ -43,9 +43,20 @@ export function parseBrokerUrl(text: string): BrokerAddress {
     host: url.hostname.replace(/^\[(.*)\]$/, '$1'),
     port: url.port === '' ? (secure ? 8883 : 1883) : Number(url.port),
     secure,
-    username: url.username === '' ? null : decodeURIComponent(url.username),
-    password: url.password === '' ? null : decodeURIComponent(url.password),
+    username: url.username === '' ? null : decoded(url.username),
+    password: url.password === '' ? null : decoded(url.password),
   };
+}
+
+/** A part of an address; never repeated in a refusal, since it may be a password. */
+function decoded(part: string): string {
+  try {
+    return decodeURIComponent(part);
+  } catch (cause) {
+    throw new RuntimeError('options', 'broker: expected user and password with a "%" written as %25, got another one', {
+      cause,
+    });
+  }
 }
 
 /** Opens the stream; it closes itself on a packet of more than `maxPacketBytes`. */
@@ -55,7 +66,8 @@ export function openStream(address: BrokerAddress, tls: TlsOptions, maxPacketByt
     ? connectTls({
         host,
         port,
-        servername: host,
+        // Only a name may be sent ahead (RFC 6066 section 3), not an address.
+        ...(isIP(host) ? {} : { servername: host }),
         ...(tls.authority ? { ca: Buffer.from(tls.authority) } : {}),
         ...(tls.certificate ? { cert: Buffer.from(tls.certificate) } : {}),
         ...(tls.key ? { key: Buffer.from(tls.key) } : {}),

@@ -18,9 +18,13 @@ interface WillOptions {
 /** Words for the system's and the broker's codes. */
 export function plainReason(error: Error): string {
   const code = (error as { code?: unknown }).code;
-  if (code === 'ECONNREFUSED') return 'nothing listens there (connection refused); is the broker running?';
-  if (code === 'ENOTFOUND' || code === 'EAI_AGAIN') return 'host name not found';
-  if (code === 'ETIMEDOUT' || code === 'EHOSTUNREACH' || code === 'ENETUNREACH') return 'host not reachable';
+  if (code === 'ECONNREFUSED')
+    return 'nothing listens there (connection refused); check address and port, and that the broker runs';
+  if (code === 4 || code === 5 || code === 134 || code === 135)
+    return 'not let in (not authorised); check user and password';
+  if (code === 'ENOTFOUND' || code === 'EAI_AGAIN') return 'host name not found; check the address';
+  if (code === 'ETIMEDOUT' || code === 'EHOSTUNREACH' || code === 'ENETUNREACH')
+    return 'host not reachable; check address and network';
   if (code === 'ECONNRESET') return 'connection closed by the broker';
   return error.message.replace(/\s*\n[\s\S]*$/, '');
 }

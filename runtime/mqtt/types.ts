@@ -78,9 +78,10 @@ export interface Connection {
   /**
    * Subscribes now or at the next connect, and again after every reconnect.
    *
-   * throws  RuntimeError 'broker' if the broker refuses a filter
+   * patienceMs  how long to wait for the broker's answer; without it, for ever
+   * throws      RuntimeError 'broker' if the broker refuses a filter or does not answer in time
    */
-  subscribe(filters: readonly string[], qos?: 0 | 1): Promise<void>;
+  subscribe(filters: readonly string[], qos?: 0 | 1, patienceMs?: number): Promise<void>;
   /**
    * Waits for the first connect; rejects at the first failed attempt or after `timeoutMs`.
    *

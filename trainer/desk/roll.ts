@@ -3,7 +3,7 @@
  * serving or says why not. Retained, so that a gateway that is away finds it when it comes back.
  */
 import { type HealthMessage, parseHealthMessage, topicsOf } from '@stillwell/protocol';
-import { brokerError, clientIdFor, connectBroker } from '../broker.ts';
+import { brokerError, clientIdFor, connectBroker, subscribeTo } from '../broker.ts';
 
 /** One bundle for one site, and how long to wait for the word. */
 export interface RollOptions {
@@ -84,7 +84,7 @@ export async function rollBundle(options: RollOptions): Promise<RollOutcome> {
     options.waitMs,
   );
   try {
-    await connection.subscribe([topics.health]);
+    await subscribeTo(connection, [topics.health]);
     await new Promise((resolve) => setTimeout(resolve, SETTLE_MS));
     isOffered = true;
     await connection.publish({ topic: topics.bundle, payload: options.sealed, qos: 1, retain: true });

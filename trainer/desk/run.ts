@@ -5,7 +5,7 @@
 import { existsSync, statSync } from 'node:fs';
 import { topicsOf } from '@stillwell/protocol';
 import type { Connection } from '@stillwell/runtime/mqtt';
-import { brokerError, clientIdFor, connectBroker } from '../broker.ts';
+import { checkBroker, clientIdFor, connectBroker, subscribeTo } from '../broker.ts';
 import { TrainError } from '../errors.ts';
 import { Collector, type DeskEvent } from './collect.ts';
 import { Shelf } from './shelf.ts';
@@ -48,6 +48,7 @@ export async function startDesk(options: DeskOptions): Promise<RunningDesk> {
   if (bundles !== null && !(existsSync(bundles) && statSync(bundles).isDirectory())) {
     throw new TrainError('file', `--bundles ${bundles}: expected a folder of sealed bundles (.swb), found none`);
   }
+  checkBroker(options.broker);
   const store = await openStore(options.data);
   try {
     const shelf = new Shelf(store, bundles);
@@ -101,12 +102,7 @@ async function openLink(options: DeskOptions, store: Store, shelf: Shelf) {
   opened(connection);
   // MQTT 5 lets several desks share one fleet; 3.1.1 knows no shared subscription.
   const filter = topicsOf(root, '+').segments;
-  try {
-    await connection.subscribe([connection.protocol === 5 ? `$share/desk/${filter}` : filter]);
-  } catch (cause) {
-    await connection.end(true);
-    throw brokerError(cause);
-  }
+  await subscribeTo(connection, [connection.protocol === 5 ? `$share/desk/${filter}` : filter]);
   try {
     await collector.repeatReceipts();
   } catch (cause) {

@@ -9,7 +9,7 @@ import {
   type StateMessage,
   topicsOf,
 } from '@stillwell/protocol';
-import { brokerError, clientIdFor, connectBroker } from '../broker.ts';
+import { clientIdFor, connectBroker, subscribeTo } from '../broker.ts';
 import type { WatchedSite } from './watch-view.ts';
 
 /** Whom to follow, and whom to tell. */
@@ -51,21 +51,19 @@ export async function followSite(options: WatchOptions): Promise<{ stop(): Promi
     }
     options.onChange({ site: options.site, forecasts, state, health }, signal);
   };
+  let isFollowing = false;
   const connection = await connectBroker({
     url: options.broker,
     clientId: clientIdFor('watch'),
     onMessage: take,
     ...(options.connectTimeoutMs === undefined ? {} : { connectTimeoutMs: options.connectTimeoutMs }),
     onState: (event) => {
-      if (event.kind === 'lost') options.onTrouble(`broker lost: ${event.reason}; trying again`);
+      // Until the first connect the refusal itself tells what is wrong.
+      if (event.kind === 'connected') isFollowing = true;
+      if (event.kind === 'lost' && isFollowing) options.onTrouble(`broker lost: ${event.reason}; trying again`);
     },
   });
-  try {
-    // The state first: with it the first forecast already shows the value now.
-    for (const filter of [topics.health, topics.state, topics.forecast('+')]) await connection.subscribe([filter]);
-  } catch (cause) {
-    await connection.end(true);
-    throw brokerError(cause);
-  }
+  // The state first: with it the first forecast already shows the value now.
+  for (const filter of [topics.health, topics.state, topics.forecast('+')]) await subscribeTo(connection, [filter]);
   return { stop: () => connection.end() };
 }
