@@ -1,6 +1,7 @@
 /** `stillwell desk`: collects segments from the broker, answers with receipts, keeps the archive. */
 import { Command } from 'commander';
 import type { RunEvent } from '../desk/run.ts';
+import { rootOption } from '../topic-option.ts';
 
 interface DeskCommandOptions {
   readonly data: string;
@@ -23,7 +24,7 @@ export function deskCommand(): Command {
     .option('--data <dir>', 'data folder; one desk at a time')
     .option('--broker <url>', 'mqtt://[user:password@]host[:port] or mqtts://…')
     .option('--bundles <dir>', 'folder of sealed bundles (.swb) to decode with; looked through again every two seconds')
-    .option('--root <topic>', 'first level of the topics', 'stillwell')
+    .option('--root <topic>', 'first level of the topics', rootOption, 'stillwell')
     .option('--json', 'one JSON line per event on standard output', false)
     .addHelpText(
       'after',

@@ -6,6 +6,7 @@ import type { RollOutcome } from '../desk/roll.ts';
 import { TrainError } from '../errors.ts';
 import { readBytesFile } from '../key-file.ts';
 import { seconds } from '../option-values.ts';
+import { rootOption } from '../topic-option.ts';
 
 interface RollCommandOptions {
   readonly bundle: string;
@@ -21,7 +22,7 @@ export function rollCommand(): Command {
     .description('Publishes a sealed bundle to its site, retained, and waits until the gateway serves it or refuses.')
     .requiredOption('--bundle <file>', 'sealed bundle (.swb)')
     .requiredOption('--broker <url>', 'mqtt://[user:password@]host[:port] or mqtts://…')
-    .option('--root <topic>', 'first level of the topics', 'stillwell')
+    .option('--root <topic>', 'first level of the topics', rootOption, 'stillwell')
     .option('--wait <seconds>', 'how long to wait for the gateway', seconds, 120)
     .option('--json', 'the outcome as JSON', false)
     .addHelpText(

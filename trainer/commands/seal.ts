@@ -1,8 +1,9 @@
 /** `stillwell seal`: signs a candidate under the next sequence number. */
+import { type KeyPair, keyIdOf, openSealed, publicHalf } from '@stillwell/protocol';
 import { Command } from 'commander';
 import { hex, openBundleFile } from '../bundle-file.ts';
 import { TrainError } from '../errors.ts';
-import { readPrivateKey, refuseToReplace } from '../key-file.ts';
+import { readBytesFile, readPrivateKey, refuseToReplace } from '../key-file.ts';
 import { reason, wholeNumber } from '../option-values.ts';
 import { writeOutput } from '../output-file.ts';
 import { nextNumbers, sealCandidate } from '../seal-candidate.ts';
@@ -50,7 +51,7 @@ function seal(options: SealCommandOptions): void {
   const key = readPrivateKey(options.key);
   const numbers = nextNumbers(
     { sequence: options.sequence ?? null, epoch: options.epoch ?? null },
-    options.after === undefined ? null : predecessor(options.after, candidate.bundle.site),
+    options.after === undefined ? null : predecessor(options.after, candidate.bundle.site, key),
   );
   refuseToReplace(options.out, options.force);
   const override = options.override ?? null;
@@ -68,7 +69,8 @@ function seal(options: SealCommandOptions): void {
   );
 }
 
-function predecessor(file: string, site: string) {
+/** Where our own key signed it the signature must hold, since only that vouches for its numbers. */
+function predecessor(file: string, site: string, key: KeyPair) {
   const before = openBundleFile(file);
   if (before.envelope === null) {
     throw new TrainError(
@@ -78,6 +80,14 @@ function predecessor(file: string, site: string) {
   }
   if (before.bundle.site !== site) {
     throw new TrainError('options', `--after ${file}: is a bundle of site "${before.bundle.site}", expected "${site}"`);
+  }
+  const own = hex(keyIdOf(key.publicKey));
+  if (before.envelope.signatures.some(({ keyId }) => hex(keyId) === own)) {
+    try {
+      openSealed(readBytesFile(file, 'a sealed bundle (.swb)'), [publicHalf(key)]);
+    } catch (cause) {
+      throw new TrainError('bundle', `--after ${file}: ${(cause as Error).message}`, { cause });
+    }
   }
   const { epoch, sequence } = before.envelope;
   return { file, epoch, sequence, digest: before.digest };

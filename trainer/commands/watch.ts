@@ -3,6 +3,7 @@ import { ADVISORY } from '@stillwell/protocol';
 import { Command } from 'commander';
 import type { WatchedSite } from '../desk/watch-view.ts';
 import { seconds, several } from '../option-values.ts';
+import { rootOption, siteNameOption } from '../topic-option.ts';
 
 interface WatchCommandOptions {
   readonly broker: string;
@@ -19,8 +20,8 @@ export function watchCommand(): Command {
   return new Command('watch')
     .description("Shows a site's forecasts with bounds, plots, age and time to limits. Runs until Ctrl-C.")
     .requiredOption('--broker <url>', 'mqtt://[user:password@]host[:port] or mqtts://…')
-    .requiredOption('--site <name>', 'site to watch')
-    .option('--root <topic>', 'first level of the topics', 'stillwell')
+    .requiredOption('--site <name>', 'site to watch', siteNameOption)
+    .option('--root <topic>', 'first level of the topics', rootOption, 'stillwell')
     .option('--signal <name>', 'only this signal; may be repeated', several)
     .option('--once', 'show what there is and end; exit code 1 when nothing came in time', false)
     .option('--wait <seconds>', 'with --once: how long to wait', seconds, 10)
