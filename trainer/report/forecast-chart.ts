@@ -4,6 +4,7 @@
 import * as Plot from '@observablehq/plot';
 import type { Hindcast, HindcastPath } from '../judge/hindcast.ts';
 import { chart, palette } from './chart.ts';
+import { withUnit } from './markup.ts';
 
 interface Step {
   readonly time: Date;
@@ -24,6 +25,12 @@ export function endToEnd(hindcast: Hindcast, fromMs: number, toMs: number): Hind
     free = path.originMs + span;
   }
   return chosen;
+}
+
+/** Hours and minutes of a day of 24 hours; the date where a day begins. */
+function clockText(time: Date): string {
+  const text = time.toISOString();
+  return text.slice(11, 16) === '00:00' ? text.slice(0, 10) : text.slice(11, 16);
 }
 
 /** Draws one signal over [fromMs, toMs]. */
@@ -48,8 +55,12 @@ export function forecastChart(hindcast: Hindcast, signal: number, fromMs: number
       width: 920,
       height: 230,
       marginLeft: 55,
-      x: { type: 'utc', label: 'time (UTC)' },
-      y: { label: `${hindcast.signals[signal]} (${hindcast.units[signal]})`, grid: true, nice: true },
+      x: { type: 'utc', label: 'time (UTC)', tickFormat: clockText },
+      y: {
+        label: withUnit(hindcast.signals[signal] as string, hindcast.units[signal] as string),
+        grid: true,
+        nice: true,
+      },
       marks: [
         Plot.areaY(told, { x: 'time', y1: 'lower', y2: 'upper', z: 'origin', fill: palette.band, fillOpacity: 0.35 }),
         Plot.lineY(came, { x: 'time', y: 'value', stroke: palette.reading, strokeWidth: 1, strokeOpacity: 0.8 }),

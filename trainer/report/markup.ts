@@ -25,16 +25,14 @@ export function percent(share: number): string {
   return Number.isFinite(share) ? `${Math.round(share * 100)} %` : '–';
 }
 
-/** A span of time in the largest unit that keeps it readable. */
-export function duration(ms: number): string {
-  const units: readonly (readonly [number, string])[] = [
-    [86_400_000, 'd'],
-    [3_600_000, 'h'],
-    [60_000, 'min'],
-    [1000, 's'],
-  ];
-  for (const [size, name] of units) if (ms >= size) return `${Number((ms / size).toFixed(1))} ${name}`;
-  return `${ms} ms`;
+/** A unit as people read it: nothing for what has none, which UCUM writes as 1. */
+export function unitText(unit: string): string {
+  return unit === '1' ? '' : unit;
+}
+
+/** Words with their unit in brackets, where there is one. */
+export function withUnit(words: string, unit: string): string {
+  return unitText(unit) === '' ? words : `${words} (${unit})`;
 }
 
 /** A moment in UTC to the minute. */

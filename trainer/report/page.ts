@@ -6,9 +6,10 @@ import { ADVISORY, type Site } from '@stillwell/protocol';
 import type { Survey } from '../history/survey.ts';
 import type { Hindcast } from '../judge/hindcast.ts';
 import type { FitResult } from '../pipeline.ts';
+import { spanText } from '../text-table.ts';
 import { palette } from './chart.ts';
 import { forecastChart } from './forecast-chart.ts';
-import { duration, escapeHtml, moment, percent, plainNumber, table } from './markup.ts';
+import { escapeHtml, moment, percent, plainNumber, table, unitText } from './markup.ts';
 import { autocorrelationChart, histogramChart } from './residual-chart.ts';
 import { coverageChart, errorChart } from './skill-chart.ts';
 import { skillTable } from './skill-table.ts';
@@ -42,6 +43,7 @@ ${summary(site, result)}
 <p>How much smaller the squared error is than that of the strongest rival (named in the cell) at that distance,
 on held-out time that the model never saw: 0 % is no better, 100 % would be perfect, below 0 % the rival is better.</p>
 ${skillTable(result.hindcast)}
+${isLearnedAgain(result) ? '<p>After that it learned once more from the whole history, which is the model in the bundle.</p>' : ''}
 ${verdictTable(result)}
 <h2>Forecasts over held-out days</h2>
 <p>${key(palette.reading)}reading that came ${key(palette.ours)}forecast, issued at the left end of each piece
@@ -64,8 +66,8 @@ ${record(result)}
 
 function summary(site: Site, { hindcast, verdicts, document }: FitResult): string {
   const span = `${moment(hindcast.fromMs)} to ${moment(hindcast.toMs)}`;
-  return `<p class="meta">${escapeHtml(site.equipmentClass)} · tick ${duration(site.tickMs)} · forecasts to
-${duration(site.tickMs * hindcast.horizon)} ahead · bundle ${plainNumber(document.length / 1024)} KiB · judged on ${span}</p>
+  return `<p class="meta">${escapeHtml(site.equipmentClass)} · tick ${spanText(site.tickMs)} · forecasts to
+${spanText(site.tickMs * hindcast.horizon)} ahead · bundle ${plainNumber(document.length / 1024)} KiB · judged on ${span}</p>
 <p class="verdict${verdicts.hasSkill ? '' : ' bad'}"><strong>${escapeHtml(verdicts.sentence)}</strong></p>`;
 }
 
@@ -86,7 +88,7 @@ function perSignal(hindcast: Hindcast, draw: (signal: number) => string): string
     .map((name, signal) => {
       const judged = (hindcast.count[signal * hindcast.horizon] as number) > 0;
       const body = judged ? draw(signal) : '<p>No held-out reading of this signal: nothing to judge.</p>';
-      return `<h3>${escapeHtml(name)} <span class="meta">${escapeHtml(hindcast.units[signal] ?? '')}</span></h3>${body}`;
+      return `<h3>${escapeHtml(name)} <span class="meta">${escapeHtml(unitText(hindcast.units[signal] ?? ''))}</span></h3>${body}`;
     })
     .join('\n');
 }
@@ -153,19 +155,27 @@ function findings(survey: Survey, { warnings }: FitResult): string {
   return listed + warned;
 }
 
-function record({ bundle, chosen, audit, learn, calibrate }: FitResult): string {
+/** Whether the bundle holds more than what was judged. */
+function isLearnedAgain({ bundle, learn }: FitResult): boolean {
+  return bundle.provenance.lastMs >= learn.toTick * bundle.tickMs;
+}
+
+function record(result: FitResult): string {
+  const { bundle, chosen, audit, learn, calibrate } = result;
   const tick = bundle.tickMs;
+  const again = `${moment(bundle.provenance.firstMs)} to ${moment(bundle.provenance.lastMs + tick)}`;
   const hex = (bytes: Uint8Array): string => Buffer.from(bytes).toString('hex');
   return table(
     ['', ''],
     [
       ['learned from', `${moment(learn.fromTick * tick)} to ${moment(learn.toTick * tick)}`],
+      ...(isLearnedAgain(result) ? [['after judging, once more from', again]] : []),
       ['penalties and bounds from', `${moment(calibrate.fromTick * tick)} to ${moment(calibrate.toTick * tick)}`],
       [
         'state',
         `${chosen.order} numbers from ${chosen.featureCount} features of the past (${escapeHtml(chosen.bank)})`,
       ],
-      ['period', chosen.periodTicks > 0 ? duration(chosen.periodTicks * tick) : 'none'],
+      ['period', chosen.periodTicks > 0 ? spanText(chosen.periodTicks * tick) : 'none'],
       ['rounding to integers cost', `${plainNumber(100 * (audit.ratio - 1))} % of the squared error`],
       ['history digest', `<code>${hex(bundle.provenance.historyDigest)}</code>`],
       ['survey digest', `<code>${hex(bundle.provenance.surveyDigest)}</code>`],

@@ -5,6 +5,7 @@
 import * as Plot from '@observablehq/plot';
 import type { Hindcast } from '../judge/hindcast.ts';
 import { chart, palette } from './chart.ts';
+import { withUnit } from './markup.ts';
 
 /** Mean and standard deviation of the finite entries; count says how many. */
 export function spread(values: Float64Array): { readonly mean: number; readonly sd: number; readonly count: number } {
@@ -70,7 +71,7 @@ export function histogramChart(hindcast: Hindcast, signal: number): string {
       width: 450,
       height: 210,
       marginLeft: 50,
-      x: { label: `one-step residual (${hindcast.units[signal]})` },
+      x: { label: withUnit('one-step residual', hindcast.units[signal] as string) },
       y: { label: 'ticks', grid: true },
       marks: [
         Plot.rectY(bars, { x1: 'from', x2: 'to', y: 'ticks', fill: palette.band, inset: 0.3 }),

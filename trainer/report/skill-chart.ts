@@ -4,6 +4,7 @@
 import * as Plot from '@observablehq/plot';
 import type { Hindcast } from '../judge/hindcast.ts';
 import { chart, palette } from './chart.ts';
+import { withUnit } from './markup.ts';
 
 /** Hours, minutes or ticks: the unit of a horizon axis that needs no reading glasses. */
 export function horizonUnit(hindcast: Hindcast): { readonly label: string; readonly perTick: number } {
@@ -29,13 +30,19 @@ export function errorChart(hindcast: Hindcast, signal: number): string {
       rival,
     })).filter((point) => Number.isFinite(point.error)),
   );
+  // Without a domain, errors of nothing but zero give an axis of nothing.
+  const most = Math.max(0, ...ours.map(({ error }) => error), ...theirs.map(({ error }) => error));
   return chart(
     {
       width: 450,
       height: 230,
       marginLeft: 50,
       x: { label },
-      y: { label: `root mean squared error (${hindcast.units[signal]})`, grid: true, zero: true },
+      y: {
+        label: withUnit('root mean squared error', hindcast.units[signal] as string),
+        grid: true,
+        domain: [0, most || 1],
+      },
       color: { domain: [...rivals, 'this model'], range: [...palette.rivals.slice(0, rivals.length), palette.ours] },
       marks: [
         // Rivals that coincide stay visible: the first wide and pale beneath, every later one with its own dashes.

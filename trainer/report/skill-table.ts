@@ -2,7 +2,8 @@
  * Where the model can be trusted: skill by signal and horizon against the strongest rival there, shaded.
  */
 import type { Hindcast } from '../judge/hindcast.ts';
-import { duration, escapeHtml, percent, table } from './markup.ts';
+import { spanText } from '../text-table.ts';
+import { escapeHtml, percent, table } from './markup.ts';
 
 /** Steps worth a column: the first, the last, and a few between, without repeats. */
 export function shownSteps(horizon: number): number[] {
@@ -44,5 +45,5 @@ export function skillTable(hindcast: Hindcast): string {
       return `<span class="cell" style="${shade(skill)}">${percent(skill)}<small>${escapeHtml(rival.name)}</small></span>`;
     }),
   ]);
-  return table(['signal', ...steps.map((step) => duration(step * hindcast.tickMs))], rows, 'skill');
+  return table(['signal', ...steps.map((step) => spanText(step * hindcast.tickMs))], rows, 'skill');
 }
