@@ -28,6 +28,13 @@ export function reason(text: string): string {
   return text;
 }
 
+/** A parser for a share, between 0 and 1. */
+export function share(text: string): number {
+  const value = Number(text);
+  if (!(value > 0 && value < 1)) throw new InvalidArgumentError('Expected a share between 0 and 1.');
+  return value;
+}
+
 /** Gathers a repeated option. */
 export function several(text: string, before: readonly string[] | undefined): string[] {
   return [...(before ?? []), text];

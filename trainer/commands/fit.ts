@@ -1,15 +1,12 @@
 /** `stillwell fit`: from a history to a judged candidate. */
-import { join } from 'node:path';
 import { ADVISORY, type Site } from '@stillwell/protocol';
-import { Command, InvalidArgumentError } from 'commander';
+import { Command } from 'commander';
+import { CANDIDATE_FILES, candidateFacts, writeCandidate } from '../candidate-files.ts';
 import { fitSummary } from '../fit-summary.ts';
 import { type LoadedHistory, loadHistory } from '../history/load.ts';
-import { hindcastJson } from '../judge/hindcast-json.ts';
-import { reason, several, wholeNumber } from '../option-values.ts';
-import { writeOutput } from '../output-file.ts';
+import { reason, several, share, wholeNumber } from '../option-values.ts';
 import { FIT_DEFAULTS, type FitResult, fit } from '../pipeline.ts';
 import { createProgress } from '../progress.ts';
-import { fitReport } from '../report/page.ts';
 import { readSite } from '../site-file.ts';
 import { timeSpan } from '../time-option.ts';
 
@@ -72,9 +69,9 @@ async function run(options: FitCommandOptions): Promise<void> {
     },
   );
   label.end();
-  writeResults(options.out, site, loaded, result);
+  await writeCandidate(options.out, site, loaded.survey, result);
   process.stdout.write(
-    options.json ? `${JSON.stringify(resultJson(options.out, result), null, 2)}\n` : text(options.out, result),
+    options.json ? `${JSON.stringify(candidateFacts(options.out, result), null, 2)}\n` : text(options.out, result),
   );
 }
 
@@ -88,39 +85,6 @@ async function load(site: Site, options: FitCommandOptions): Promise<LoadedHisto
   }
 }
 
-/** Everything is made before anything is written. */
-function writeResults(folder: string, site: Site, loaded: LoadedHistory, result: FitResult): void {
-  const survey = `${JSON.stringify(loaded.survey, null, 2)}\n`;
-  const hindcast = `${JSON.stringify(hindcastJson(result.hindcast), null, 2)}\n`;
-  const report = fitReport({ site, survey: loaded.survey, result });
-  writeOutput(join(folder, 'survey.json'), survey);
-  writeOutput(join(folder, 'hindcast.json'), hindcast);
-  writeOutput(join(folder, 'report.html'), report);
-  writeOutput(join(folder, 'candidate.swc'), result.document);
-}
-
-function resultJson(folder: string, result: FitResult): Record<string, unknown> {
-  return {
-    candidate: join(folder, 'candidate.swc'),
-    bytes: result.document.length,
-    has_skill: result.verdicts.hasSkill,
-    mean_skill: result.verdicts.meanSkill,
-    verdict: result.verdicts.sentence,
-    signals: result.verdicts.signals,
-    audit: result.audit,
-    chosen: result.chosen,
-    warnings: result.warnings,
-    timings_ms: result.timings,
-    advisory: ADVISORY,
-  };
-}
-
 function text(folder: string, result: FitResult): string {
-  return `${fitSummary(result)}\nWritten to ${folder}: candidate.swc, report.html, hindcast.json, survey.json\n\n${ADVISORY}\n`;
-}
-
-function share(text: string): number {
-  const value = Number(text);
-  if (!(value > 0 && value < 1)) throw new InvalidArgumentError('Expected a share between 0 and 1.');
-  return value;
+  return `${fitSummary(result)}\nWritten to ${folder}: ${CANDIDATE_FILES}\n\n${ADVISORY}\n`;
 }

@@ -1,13 +1,11 @@
 /** `stillwell refit`: a new candidate from what the desk collected. */
-import { join } from 'node:path';
 import { ADVISORY, type Site } from '@stillwell/protocol';
-import { Command, InvalidArgumentError } from 'commander';
+import { Command } from 'commander';
 import { openBundleFile } from '../bundle-file.ts';
+import { CANDIDATE_FILES, candidateFacts, writeCandidate } from '../candidate-files.ts';
 import { fitSummary } from '../fit-summary.ts';
 import type { History } from '../history/history.ts';
-import { hindcastJson } from '../judge/hindcast-json.ts';
-import { reason, several, wholeNumber } from '../option-values.ts';
-import { writeOutput } from '../output-file.ts';
+import { reason, several, share, wholeNumber } from '../option-values.ts';
 import { createProgress } from '../progress.ts';
 import type { RefitResult } from '../refit/refit.ts';
 import { readSite } from '../site-file.ts';
@@ -89,7 +87,7 @@ async function run(options: RefitCommandOptions): Promise<void> {
     },
   );
   progress.end();
-  await write(options.out, site, result);
+  await writeCandidate(options.out, site, result.absorbed.survey, result.fit);
   process.stdout.write(
     options.json ? `${JSON.stringify(resultJson(options.out, result), null, 2)}\n` : text(options.out, result),
   );
@@ -106,35 +104,13 @@ async function readFiles(site: Site, options: RefitCommandOptions, span: TimeSpa
   }
 }
 
-/** Everything is made before anything is written. */
-async function write(folder: string, site: Site, { absorbed, fit }: RefitResult): Promise<void> {
-  const { fitReport } = await import('../report/page.ts');
-  const survey = `${JSON.stringify(absorbed.survey, null, 2)}\n`;
-  const hindcast = `${JSON.stringify(hindcastJson(fit.hindcast), null, 2)}\n`;
-  const report = fitReport({ site, survey: absorbed.survey, result: fit });
-  writeOutput(join(folder, 'survey.json'), survey);
-  writeOutput(join(folder, 'hindcast.json'), hindcast);
-  writeOutput(join(folder, 'report.html'), report);
-  writeOutput(join(folder, 'candidate.swc'), fit.document);
-}
-
 function resultJson(folder: string, { fit, comparison, absorbed }: RefitResult): Record<string, unknown> {
   const { series, newFromTick } = absorbed;
   return {
-    candidate: join(folder, 'candidate.swc'),
-    bytes: fit.document.length,
+    ...candidateFacts(folder, fit),
     ticks: series.ticks,
     new_ticks: series.firstTick + series.ticks - newFromTick,
-    has_skill: fit.verdicts.hasSkill,
-    mean_skill: fit.verdicts.meanSkill,
-    verdict: fit.verdicts.sentence,
-    signals: fit.verdicts.signals,
     comparison,
-    audit: fit.audit,
-    chosen: fit.chosen,
-    warnings: fit.warnings,
-    timings_ms: fit.timings,
-    advisory: ADVISORY,
   };
 }
 
@@ -155,14 +131,5 @@ function text(folder: string, { fit, comparison }: RefitResult): string {
           ),
           comparison.sentence,
         ].join('\n');
-  return (
-    `${fitSummary(fit)}\n${beside}\n\nWritten to ${folder}: candidate.swc, report.html, hindcast.json, survey.json\n\n` +
-    `${ADVISORY}\n`
-  );
-}
-
-function share(text: string): number {
-  const value = Number(text);
-  if (!(value > 0 && value < 1)) throw new InvalidArgumentError('Expected a share between 0 and 1.');
-  return value;
+  return `${fitSummary(fit)}\n${beside}\n\nWritten to ${folder}: ${CANDIDATE_FILES}\n\n${ADVISORY}\n`;
 }

@@ -1,0 +1,45 @@
+/** What fit and refit leave in a folder, and what they say of it to a program. */
+import { join } from 'node:path';
+import { ADVISORY, type Site } from '@stillwell/protocol';
+import type { Survey } from './history/survey.ts';
+import { hindcastJson } from './judge/hindcast-json.ts';
+import { writeOutputs } from './output-file.ts';
+import type { FitResult } from './pipeline.ts';
+
+/** Names of the files, for help texts and last lines. */
+export const CANDIDATE_FILES = 'candidate.swc, report.html, hindcast.json, survey.json';
+
+/**
+ * Writes candidate, report, hindcast and survey. Everything is made before anything is written.
+ *
+ * throws  TrainError 'file' with the system's reason
+ */
+export async function writeCandidate(folder: string, site: Site, survey: Survey, result: FitResult): Promise<void> {
+  // Plots take half a second to load, which commands without a report need not wait for.
+  const { fitReport } = await import('./report/page.ts');
+  const hindcast = `${JSON.stringify(hindcastJson(result.hindcast), null, 2)}\n`;
+  const report = fitReport({ site, survey, result });
+  writeOutputs([
+    { path: join(folder, 'survey.json'), bytes: `${JSON.stringify(survey, null, 2)}\n` },
+    { path: join(folder, 'hindcast.json'), bytes: hindcast },
+    { path: join(folder, 'report.html'), bytes: report },
+    { path: join(folder, 'candidate.swc'), bytes: result.document },
+  ]);
+}
+
+/** The result as plain JSON. */
+export function candidateFacts(folder: string, result: FitResult): Record<string, unknown> {
+  return {
+    candidate: join(folder, 'candidate.swc'),
+    bytes: result.document.length,
+    has_skill: result.verdicts.hasSkill,
+    mean_skill: result.verdicts.meanSkill,
+    verdict: result.verdicts.sentence,
+    signals: result.verdicts.signals,
+    audit: result.audit,
+    chosen: result.chosen,
+    warnings: result.warnings,
+    timings_ms: result.timings,
+    advisory: ADVISORY,
+  };
+}
