@@ -117,6 +117,21 @@ describe('fit', () => {
     expect(Math.sqrt(result.hindcast.mse[0]!)).toBeLessThan(0.02);
   });
 
+  it('keeps forecasts and bounds inside the range that the site file declares', async () => {
+    const ranged = { ...site, signals: site.signals.map((one) => ({ ...one, range: [18, 31] as const })) };
+    const input = { series, site: ranged, survey: {}, lattices: names.map(() => lattice) };
+    const { model, hindcast } = await fitHistory(input, FIT_DEFAULTS);
+    expect(Array.from(model.clipLow.subarray(0, 2), (low) => low >= 18)).toEqual([true, true]);
+    expect(Array.from(model.clipHigh.subarray(0, 2), (high) => high <= 31)).toEqual([true, true]);
+    expect(model.clipLow[0]).toBe(18);
+    for (const { lower, upper } of hindcast.paths) {
+      expect(Math.min(...lower)).toBeGreaterThanOrEqual(18);
+      expect(Math.max(...upper)).toBeLessThanOrEqual(31);
+    }
+    const summed = { ...ranged, signals: ranged.signals.map((one) => ({ ...one, aggregate: 'sum' as const })) };
+    expect((await fitHistory({ ...input, site: summed }, FIT_DEFAULTS)).model.clipLow[0]).toBeLessThan(18);
+  });
+
   it('gives a signal that is silent while bounds are set the spread of the learning part, and says so', async () => {
     const result = await run(replaced(1, (value, t) => (t >= 900 && t < 1200 ? Number.NaN : value)));
     expect(result.warnings.join(' ')).toMatch(/flow has no reading in the part that sets the bounds/);

@@ -1,7 +1,8 @@
 /**
  * A history made ready for learning: scaled, completed, its period and seasonal means found; and what was odd about it.
  */
-import type { Site } from '@stillwell/protocol';
+import type { Signal, Site } from '@stillwell/protocol';
+import { channelsOf } from '../history/channels.ts';
 import type { Series } from '../history/series.ts';
 import type { Surroundings } from '../quantise/float-model.ts';
 import type { Split } from '../requirements.ts';
@@ -40,11 +41,12 @@ export function prepareHistory(
 ): Prepared {
   const learnTicks = split.learn.toTick - split.learn.fromTick;
   const calibrateTicks = split.calibrate.toTick - split.calibrate.fromTick;
-  const scalings = findScalings(
+  const found = findScalings(
     series,
     learnTicks,
     lattices.map((lattice) => lattice.step),
   );
+  const scalings = found.map((scaling, c) => withinRange(scaling, channelsOf(site)[c]));
   const longGap = Math.max(LEAST_LONG_GAP, site.horizon);
   const ends = { learnTicks, calibrateEnd: learnTicks + calibrateTicks };
   const first = fillHistory(series, scalings, 0, longGap, ends);
@@ -65,6 +67,19 @@ export function prepareHistory(
     learnTicks,
     calibrateTicks,
     warnings: [...warningsOf(series, scalings, period), ...silentWhereBoundsAreSet(series, ends)],
+  };
+}
+
+/**
+ * Clips no wider than the site file's range, beyond which no reading is taken: then no forecast or bound says what cannot
+ * be. Sums and increments have no range of their own.
+ */
+function withinRange(scaling: Scaling, { range, aggregate }: Signal): Scaling {
+  if (range === null || aggregate === 'sum' || aggregate === 'increment') return scaling;
+  return {
+    ...scaling,
+    clipLow: Math.max(scaling.clipLow, range[0]),
+    clipHigh: Math.min(scaling.clipHigh, range[1]),
   };
 }
 

@@ -59,6 +59,8 @@ export interface HindcastPath {
 export interface HindcastSpan extends TickSpan {
   /** What rivals may learn from; null, or outside the series: rivals that need it are left out. */
   readonly learn: TickSpan | null;
+  /** Model whose clips the readings are scored under, so that two models are held against the same; the one replayed. */
+  readonly clipAs?: LinearModel;
 }
 
 /** Paths kept for plots: about this many, evenly spread. */
@@ -80,7 +82,8 @@ export function hindcast(model: LinearModel, series: Series, span: HindcastSpan,
   if (from < 1 || to > series.ticks || to - from < H) {
     throw new RangeError(`Span ${from}..${to} with horizon ${H} leaves the ${series.ticks} ticks of the series.`);
   }
-  const readings = series.values.slice(0, ny).map((y, i) => clipped(y, model.clipLow[i], model.clipHigh[i]));
+  const { clipLow, clipHigh } = span.clipAs ?? model;
+  const readings = series.values.slice(0, ny).map((y, i) => clipped(y, clipLow[i], clipHigh[i]));
   const rivals = makeRivals({
     carried: readings.map((y, i) => carryForward(y, model.mean[i])),
     horizon: H,

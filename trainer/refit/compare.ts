@@ -39,7 +39,7 @@ const MUCH_WORSE = 1.1;
  */
 export function compare(result: FitResult, previous: OpenDocument, series: Series): Comparison {
   const units = previous.bundle.channels.map((channel) => channel.unit);
-  const old = hindcast(previous.model, series, { ...result.judged, learn: null }, units);
+  const old = hindcast(previous.model, series, { ...result.judged, learn: null, clipAs: result.model }, units);
   const fresh = result.hindcast;
   const signals = fresh.signals.map((signal, i) => ({
     signal,

@@ -122,6 +122,17 @@ describe('hindcast', () => {
     );
   });
 
+  it('scores two models under the clips of one where asked', () => {
+    const end = series.firstTick + series.ticks;
+    const span = { fromTick: end - 60, toTick: end, learn: null };
+    const tight = { ...result.model, clipHigh: result.model.mean.slice() };
+    const own = hindcast(tight, series, span, ['1', '1']);
+    const same = hindcast(tight, series, { ...span, clipAs: result.model }, ['1', '1']);
+    expect(own.readings[0]!.some((value) => value > tight.clipHigh[0]!)).toBe(false);
+    expect(same.readings[0]).toEqual(values[0]!.slice(700 - 60));
+    expect(same.mse[0]!).toBeGreaterThan(own.mse[0]!);
+  });
+
   it('leaves out rivals that would have to learn where the learning part is not there', () => {
     const end = series.firstTick + series.ticks;
     const cast = hindcast(result.model, series, { fromTick: end - 60, toTick: end, learn: null }, ['1', '1']);
