@@ -12,6 +12,9 @@ const SIMPLE_RIVALS: readonly string[] = ['persistence', 'seasonal persistence',
 /** Less counts as none: where nothing can be forecast, as in a random walk, chance alone gives a few thousandths. */
 const LEAST_SKILL = 0.01;
 
+/** A signal with fewer judged readings says nothing of skill, however lucky they are. */
+const LEAST_READINGS = 16;
+
 /** Worse than this is all one: the sentence says a hundredfold. */
 const MOST_WORSE = 99;
 
@@ -46,7 +49,7 @@ export interface Verdicts {
  *
  * shapes  as Hindcast
  * units   skill and coverage as shares
- * throws  nothing; a signal without one judged reading has skill NaN and says so
+ * throws  nothing; a signal with fewer than 16 judged readings has skill NaN and says so
  * source  skill score: Murphy, Monthly Weather Review 116 (1988)
  * cost    trivial
  */
@@ -91,8 +94,9 @@ export function strongestSimple(hindcast: Hindcast, signal: number, from: number
 function judgeSignal(hindcast: Hindcast, i: number, horizons: readonly number[]): Verdict {
   const H = hindcast.horizon;
   const cells = hindcast.signals.length * H;
+  const isKnown = hindcast.count[i * H] >= LEAST_READINGS;
   const skillOver = (from: number, to: number): readonly [number, number] => {
-    const rival = strongestSimple(hindcast, i, from, to);
+    const rival = isKnown ? strongestSimple(hindcast, i, from, to) : -1;
     if (rival === -1) return [Number.NaN, -1];
     const theirs = meanOf(hindcast.rivalMse, rival * cells + i * H + from, rival * cells + i * H + to);
     return [skillScore(meanOf(hindcast.mse, i * H + from, i * H + to), theirs), rival];
@@ -116,7 +120,7 @@ function signalSentence(
   nominal: number,
 ): string {
   const { signal, skill, bestRival, coverage } = verdict;
-  if (Number.isNaN(skill)) return `${signal}: no readings in the judged part, so nothing is known of its skill.`;
+  if (Number.isNaN(skill)) return `${signal}: too few readings in the judged part, so nothing is known of its skill.`;
   const over = horizon === 1 ? 'one step ahead' : `over ${horizon} steps`;
   const bounds = `${percent(coverage)} inside the ${percent(nominal)} bounds`;
   if (isRivalPerfect) return `${signal}: no better than ${bestRival}, which made no error ${over}; ${bounds}.`;

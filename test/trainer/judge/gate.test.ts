@@ -58,6 +58,21 @@ describe('the gate', () => {
     expect(judge(cast([0.5, 1.6], [1, 1])).hasSkill).toBe(false);
   });
 
+  it('knows nothing of a signal with a handful of readings', () => {
+    const few = { ...cast([0.1, 0.5], [1, 1]), count: Float64Array.of(15, 16) };
+    const verdicts = judge(few);
+    expect(verdicts.meanSkill).toBe(0.5);
+    expect(verdicts.sentence).toMatch(/on 1 of 2 signals/);
+    expect(verdicts.signals[0]).toMatchObject({
+      skill: Number.NaN,
+      bestRival: 'none',
+      sentence: 'level: too few readings in the judged part, so nothing is known of its skill.',
+    });
+    const nothing = judge({ ...few, count: new Float64Array(2) });
+    expect(nothing.hasSkill).toBe(false);
+    expect(nothing.sentence).toMatch(/Shows no skill .*mean skill an unknown share/);
+  });
+
   it('says so where a rival made no error at all', () => {
     const verdicts = judge(cast([0.2, 0], [0, 0]));
     expect(verdicts.hasSkill).toBe(false);
