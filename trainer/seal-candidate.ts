@@ -65,7 +65,7 @@ function withOverride(candidate: OpenDocument, override: string | null, where: s
     throw new TrainError(
       'no-skill',
       `${where}: the judge found no skill over the obvious forecasts, so it is not sealed ` +
-        `(${judge.verdicts[0] ?? 'no verdict'}); gather more history or more inputs, or seal it all the same with ` +
+        `(${(judge.verdicts[0] ?? 'no verdict').replace(/\.$/, '')}); gather more history or more inputs, or seal it all the same with ` +
         '--override "reason", which then stands in the bundle',
     );
   }

@@ -2,6 +2,7 @@
 import { formatSite, isName, NAME_RULE, parseSite } from '@stillwell/protocol';
 import { Command } from 'commander';
 import { TrainError } from '../errors.ts';
+import { counted } from '../history/finding.ts';
 import { draftSite } from '../history/site-draft.ts';
 import { refuseToReplace } from '../key-file.ts';
 import { several } from '../option-values.ts';
@@ -67,6 +68,6 @@ async function writeSite(options: SiteOptions): Promise<void> {
   process.stdout.write(
     options.json
       ? `${JSON.stringify({ out: options.out, site: site.site, tick_ms: site.tickMs, horizon: site.horizon, signals: site.signals.map(({ name }) => name) })}\n`
-      : `${options.out}: ${site.site}, ${site.signals.length} signals, tick ${site.tickMs / 1000} s, horizon ${site.horizon} ticks; go over it before fitting\n`,
+      : `${options.out}: ${site.site}, ${counted(site.signals.length, 'signal')}, tick ${site.tickMs / 1000} s, horizon ${site.horizon} ticks; go over it before fitting\n`,
   );
 }
