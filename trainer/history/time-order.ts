@@ -8,6 +8,9 @@ import type { ChannelReadings } from './history.ts';
 /** Steps back of about an hour look like a clock that was put back. */
 const SET_BACK_MS = [25 * 60_000, 61 * 60_000] as const;
 
+/** Share of steps back from which a file is written newest first; a shuffled one has about half of them. */
+const NEWEST_FIRST = 0.9;
+
 interface Steps {
   back: number;
   repeated: number;
@@ -43,16 +46,16 @@ export function timeOrderFindings(name: string | null, channel: ChannelReadings,
   const who = name === null ? 'The history' : name;
   const found: Finding[] = [];
   const at = (ms: number) => ({ signal: name, from: iso(ms), to: iso(ms) });
+  const isNewestFirst = steps.back > NEWEST_FIRST * (channel.times.length - 1);
   if (steps.back > 0)
     found.push({
       kind: 'unordered',
-      weight: steps.back > channel.times.length / 2 ? 'note' : 'look',
+      weight: isNewestFirst ? 'note' : 'look',
       ...at(steps.firstBackMs),
       count: steps.back,
-      sentence:
-        steps.back > channel.times.length / 2
-          ? `${who} is written newest first; it was sorted by time.`
-          : `${who} goes back in time ${counted(steps.back, 'time')}, first to ${iso(steps.firstBackMs)}; it was sorted by time.`,
+      sentence: isNewestFirst
+        ? `${who} is written newest first; it was sorted by time.`
+        : `${who} goes back in time ${counted(steps.back, 'time')}, first to ${iso(steps.firstBackMs)}; it was sorted by time.`,
       advice: 'Nothing to do if the files were only given out of order; else look at the logger’s clock.',
     });
   if (steps.repeated > 0)
