@@ -1,6 +1,7 @@
 /**
  * What a gateway is started with: options checked once, files read once, each refusal one sentence with file and field.
  */
+import { createPrivateKey, X509Certificate } from 'node:crypto';
 import { hostname } from 'node:os';
 import { join } from 'node:path';
 import {
@@ -139,8 +140,16 @@ export function readGiven(disk: Disk, path: string, what: string): Uint8Array {
   return bytes;
 }
 
+/** Store of a desk: its folder is not for a gateway, though both could write there. */
+const DESK_STORE = 'desk.db';
+
 /** Makes the data folder; throws  RuntimeError 'data-folder' */
 export function makeDataFolder(disk: Disk, folder: string): void {
+  if (disk.size(join(folder, DESK_STORE)) > 0)
+    throw new RuntimeError(
+      'data-folder',
+      `data folder ${folder}: expected that of a gateway, got a desk's (with ${DESK_STORE} inside); give another with --data`,
+    );
   try {
     disk.makeFolder(folder);
     const probe = join(folder, '.probe.part');
@@ -168,8 +177,6 @@ function readText(disk: Disk, path: string, what: string): string {
 }
 
 function readBroker(disk: Disk, raw: RawOptions): BrokerConfig {
-  const pem = (path: string | undefined, what: string): Uint8Array | null =>
-    path === undefined ? null : readGiven(disk, path, what);
   const protocol = oneOf('--protocol', raw.protocol ?? 'auto', ['auto', '3.1.1', '5']);
   const password = raw.passwordFile === undefined ? null : readText(disk, raw.passwordFile, 'password file');
   return {
@@ -178,11 +185,33 @@ function readBroker(disk: Disk, raw: RawOptions): BrokerConfig {
     username: raw.username ?? null,
     password: password === null ? null : password.replace(/\r?\n$/, ''),
     tls: {
-      authority: pem(raw.authority, 'certificate authority'),
-      certificate: pem(raw.certificate, 'client certificate'),
-      key: pem(raw.key, 'client key'),
+      authority: readPem(disk, raw.authority, 'certificate authority'),
+      certificate: readPem(disk, raw.certificate, 'client certificate'),
+      key: readPem(disk, raw.key, 'client key'),
     },
   };
+}
+
+/** A file for TLS, tried alone: later the platform would say what is wrong without saying where. */
+function readPem(
+  disk: Disk,
+  path: string | undefined,
+  what: 'certificate authority' | 'client certificate' | 'client key',
+): Uint8Array | null {
+  if (path === undefined) return null;
+  const bytes = readGiven(disk, path, what);
+  const pem = Buffer.from(bytes);
+  try {
+    if (what === 'client key') createPrivateKey(pem);
+    else new X509Certificate(pem);
+  } catch (cause) {
+    throw new RuntimeError(
+      'file',
+      `${what} ${path}: expected PEM text ("-----BEGIN …"), got something else; give the file that the broker's keeper made`,
+      { cause },
+    );
+  }
+  return bytes;
 }
 
 function oneOf<T extends string>(option: string, value: string, known: readonly T[]): T {

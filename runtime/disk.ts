@@ -118,7 +118,15 @@ export const nodeDisk: Disk = {
       throw error;
     }
   },
-  size: (path) => statSync(path, { throwIfNoEntry: false })?.size ?? 0,
+  size(path) {
+    try {
+      return statSync(path, { throwIfNoEntry: false })?.size ?? 0;
+    } catch (error) {
+      // A file where a folder on the way should be is thrown all the same.
+      if (isMissing(error)) return 0;
+      throw error;
+    }
+  },
   list(folder) {
     try {
       return readdirSync(folder).sort();

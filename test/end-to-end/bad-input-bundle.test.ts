@@ -129,10 +129,34 @@ const places: Record<string, Case> = {
     files: { 'x.swb': good },
     says: [/data folder site\.yaml: cannot be written.*give another with --data/],
   },
+  'the same, to run in': {
+    line: start.replace('--data data', '--data site.yaml'),
+    files: { 'x.swb': good },
+    says: [/data folder site\.yaml: cannot be written.*give another with --data/],
+  },
   'the data folder of no gateway': {
     line: 'stillwell-gateway status --data data',
     files: { 'data/status.json': 'hello' },
     says: [/data\/status\.json: .*expected JSON.*writes it anew/],
+  },
+  'a gateway on the data folder of a desk': {
+    line: load,
+    files: { 'x.swb': good, 'data/desk.db': 'a store' },
+    says: [/data folder data: expected that of a gateway, got a desk's .*give another with --data/],
+  },
+  'a desk on the data folder of a gateway': {
+    line: 'stillwell desk --data data --broker mqtt://127.0.0.1:1',
+    files: { 'data/identity.json': '{}' },
+    says: [/data: expected the data folder of a desk, got a gateway's .*give another with --data/],
+  },
+  'a picture for a certificate': {
+    line: 'stillwell-gateway check --site site.yaml --trust author.pub --broker mqtts://127.0.0.1:1 --authority x.pem',
+    files: { 'x.pem': PICTURE },
+    says: [/certificate authority x\.pem: expected PEM text .*got something else; give the file/],
+  },
+  'an author key for a key of TLS': {
+    line: 'stillwell-gateway check --site site.yaml --trust author.pub --broker mqtts://127.0.0.1:1 --key author.key',
+    says: [/client key author\.key: expected PEM text .*got something else; give the file/],
   },
   'the data folder of no desk': {
     line: 'stillwell refit --archive data --site site.yaml --out out',

@@ -15,6 +15,9 @@ import { SCHEMA_STEPS, type Tables } from './schema.ts';
 /** File of the store inside the desk's data folder. */
 export const STORE_FILE = 'desk.db';
 
+/** Where a gateway keeps who it is: its folder is not for a desk, though both could write there. */
+const GATEWAY_FILE = 'identity.json';
+
 /** An open store; `close` also gives the folder back. */
 export interface Store {
   readonly db: Kysely<Tables>;
@@ -25,13 +28,20 @@ export interface Store {
 /**
  * Opens a store for collecting, making folder and tables where missing. One process at a time: a second one is refused.
  *
- * throws  TrainError 'archive' when another desk holds the folder, the file is no store, or a newer program wrote it
+ * throws  TrainError 'archive' when another desk holds the folder, a gateway's data stand in it, the
+ *         file is no store, or a newer program wrote it
  */
 export async function openStore(folder: string): Promise<Store> {
   try {
     makeFolder(folder);
   } catch (cause) {
     throw unwritable(folder, cause as Error);
+  }
+  if (existsSync(join(folder, GATEWAY_FILE))) {
+    throw new TrainError(
+      'archive',
+      `${folder}: expected the data folder of a desk, got a gateway's (with ${GATEWAY_FILE} inside); give another with --data`,
+    );
   }
   const unlock = lockFolder(folder);
   try {
