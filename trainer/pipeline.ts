@@ -27,8 +27,8 @@ export { FIT_DEFAULTS, type FitInput, type FitOptions } from './fit-options.ts';
 
 /** What the learning settled on. */
 export interface Chosen {
-  /** Ridge penalty of each signal's own stage, relative to features of unit variance. */
-  readonly ownPenalty: readonly number[];
+  /** Ridge penalty of each signal's own stage, relative to features of unit variance; null: that stage did not pay. */
+  readonly ownPenalty: readonly (number | null)[];
   /** Ridge penalty of the stage across signals, by signal; null: that stage did not pay. */
   readonly crossPenalty: readonly (number | null)[];
   /** Name of the feature bank, and what it holds. */
@@ -81,7 +81,7 @@ export async function fit(input: FitInput, options: FitOptions): Promise<FitResu
   clock.lap('cleaning the history');
   const prepared = prepareHistory(input.series, input.site, input.lattices, split);
   clock.lap('learning');
-  const taught = teach(input.series, prepared);
+  const taught = teach(prepared);
   clock.lap('choosing the size and calibrating');
   const small = shrink(input, options, split, prepared, taught);
   clock.lap('judging');
@@ -152,7 +152,7 @@ function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Pr
       continue;
     }
     const span = indices(split.calibrate, input.series);
-    const calibration = calibrate(floatModel(factors, around, open), input.series, span, options.coverage);
+    const calibration = calibrate(floatModel(factors, around, open), prepared.calm, span, options.coverage);
     const bundle = composeBundle({ ...parts, calibration });
     const float = floatModel(floatFactors(learned, size.order, size.basisCount), around, calibration);
     return { size, bundle, parts: { ...parts, calibration }, float };
@@ -184,7 +184,7 @@ function auditRounding(small: Small, cast: Hindcast, series: Series, split: Spli
 
 /** Learns once more from every tick, at the size and penalties already judged; bounds stay as calibrated. */
 function learnFromAll(series: Series, prepared: Prepared, taught: Taught, small: Small): Composition {
-  const learned = teachAgain(series, prepared, taught, series.ticks);
+  const learned = teachAgain(prepared, taught, series.ticks);
   const order = Math.min(small.size.order, learned.bottleneck.carried.length);
   const { tensors } = roundedFactors(learned, order, small.size.basisCount);
   return { ...small.parts, tensors, learnedToTick: series.firstTick + series.ticks };

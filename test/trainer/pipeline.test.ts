@@ -85,6 +85,32 @@ describe('fit', () => {
     expect(result.verdicts.signals[0]!.sentence).toMatch(/^walk: no better than/);
   });
 
+  it('does not take a record that only ever rose for a law that it will', async () => {
+    const next = recurrence(39);
+    const normal = gaussians(() => next() / 2 ** 32);
+    let level = 0;
+    let rate = 0;
+    const risen = Float64Array.from({ length: 3000 }, (_, t) => {
+      rate = 0.99 * rate + 0.002 * normal();
+      level += t < 2450 ? 0.06 + rate : t < 2550 ? -0.5 : 0.02 * normal();
+      return Math.round(100 * level) / 100;
+    });
+    const { hindcast } = await run(seriesOf(['level'], [risen]));
+    const mean = (values: Float64Array, from = 0): number =>
+      values.subarray(from, from + 12).reduce((sum, value) => sum + value, 0);
+    const rival = hindcast.rivals.indexOf('persistence');
+    // The fall itself is foreseen once it is under way; a learned rise of its own shows before, and again when it is over.
+    expect(mean(hindcast.mse) / mean(hindcast.rivalMse, 12 * rival)).toBeLessThan(0.4);
+  });
+
+  it('is not thrown by one wild spell among the readings it learns from', async () => {
+    const wild = replaced(0, (value, t) => (t >= 500 && t < 510 ? value + 15 + 5 * (t % 2) : value));
+    const [clean, result] = [await run(series), await run(wild)];
+    expect(result.warnings.join(' ')).toMatch(/level: jumps away and back as nowhere else at 2024-01-21T20:00/);
+    expect(result.model.scale[0]! / clean.model.scale[0]!).toBeCloseTo(1, 2);
+    expect(result.verdicts.signals[0]!.skill).toBeGreaterThan(0.98 * clean.verdicts.signals[0]!.skill);
+  });
+
   it('learns through gaps, spikes and a level no one believes', async () => {
     const next = recurrence(17);
     const torn = replaced(0, (value, t) => {

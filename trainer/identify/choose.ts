@@ -5,7 +5,7 @@
  */
 import { cholesky, solveCholesky } from '../linalg/cholesky.ts';
 import { type Bank, featureCount } from './bank.ts';
-import { addMoments, pickMoments } from './moment-sets.ts';
+import { aboutMeans, addMoments, pickMoments } from './moment-sets.ts';
 import type { Moments } from './moments.ts';
 import { crossSystem, type Layout, mapError, ownFeatures, ownMap, ridgeOwn } from './ridge.ts';
 
@@ -14,14 +14,16 @@ export interface Choice {
   readonly bank: Bank;
   /** Kept feature indices within a channel of the widest bank. */
   readonly kept: readonly number[];
-  /** (ny) */
-  readonly ownPenalty: readonly number[];
+  /** (ny) null: the own stage does not pay for this signal, which then keeps its last value but for the cross stage. */
+  readonly ownPenalty: readonly (number | null)[];
   /** (ny) null: the cross stage does not pay for this signal. */
   readonly crossPenalty: readonly (number | null)[];
   readonly folds: number;
 }
 
 const OWN_PENALTIES = [0.001, 0.01, 0.03, 0.1, 0.3, 1, 3] as const;
+/** Where the heaviest of those is the best, heavier ones are tried up to this; beyond it lies the last value itself. */
+const HEAVIEST_OWN = 100;
 /** A decade apart; the best one's neighbours half a decade off are tried after. */
 const CROSS_PENALTIES = [0.1, 1, 10] as const;
 const HALF_DECADE = Math.sqrt(10);
@@ -29,9 +31,16 @@ const HALF_DECADE = Math.sqrt(10);
 const LEAST_CROSS = 1e-4;
 /** A smaller bank, or a heavier penalty of the own stage, within this share of the best is preferred. */
 const TIE = 0.002;
-/** A signal departs from the common penalty only for this gain, and takes the cross stage only for that one. */
+/**
+ * A signal departs from the common penalty only for this gain, and takes the cross stage only for that one. Either stage
+ * must also gain on doing without it surely: where folds disagree, it would follow chance.
+ */
 const OWN_GAIN = 0.02;
 const CROSS_GAIN = 0.001;
+/** A signal leaves its last value for its own map only for this gain. */
+const STILL_GAIN = 0.002;
+/** Student's t at 90 %, one-sided, by degrees of freedom from 1 (any table); more folds than these there are never. */
+const STUDENT_90 = [3.078, 1.886, 1.638, 1.533, 1.476, 1.44, 1.415] as const;
 /** Folds learn from at least this many groups where there are enough. */
 const FIRST_FOLD = 3;
 
@@ -97,7 +106,7 @@ function makeFolds(groups: readonly Moments[]): Fold[] {
   const folds: Fold[] = [];
   let learn = addMoments(groups.slice(0, first));
   for (let g = first; g < groups.length; g++) {
-    folds.push({ learn, judge: groups[g] });
+    folds.push({ learn: aboutMeans(learn), judge: groups[g] });
     learn = addMoments([learn, groups[g]]);
   }
   return folds;
@@ -124,33 +133,66 @@ function banks(bank: Bank): { readonly bank: Bank; readonly kept: readonly numbe
   });
 }
 
+/** (folds × ny) errors of one choice. */
+type FoldErrors = readonly Float64Array[];
+
 /**
  * One penalty for all signals, the one with the least geometric mean error over folds, so that no fold speaks louder than
  * another; a signal departs from it only for a clear gain of its own, since a choice for each alone follows the noise of
- * the folds.
+ * the folds. A signal that does not surely gain on its last value keeps that.
  */
 function chooseOwn(
   folds: readonly Fold[],
   layout: Layout,
   kept: readonly number[],
-): { penalties: number[]; error: number } {
-  const chosenOf = Array.from({ length: layout.signalCount }, (_, i) =>
-    ownFeatures(layout, i).filter((f) => kept.includes(f % layout.featureCount)),
-  );
-  const errors = OWN_PENALTIES.map((penalty) =>
-    folds.map((fold) =>
-      Float64Array.from({ length: layout.signalCount }, (_, i) => ownError(fold, layout, i, chosenOf[i], penalty)),
-    ),
-  );
+): { penalties: (number | null)[]; error: number } {
+  const signals = Array.from({ length: layout.signalCount }, (_, i) => i);
+  const chosenOf = signals.map((i) => ownFeatures(layout, i).filter((f) => kept.includes(f % layout.featureCount)));
+  const attempt = (penalty: number): FoldErrors =>
+    folds.map((fold) => Float64Array.from(signals, (i) => ownError(fold, layout, i, chosenOf[i], penalty)));
+  const penalties: number[] = [...OWN_PENALTIES];
+  const errors = penalties.map(attempt);
   const means = errors.map((perFold) => geometric(perFold.map(total)));
+  while (leastIndex(means) === means.length - 1 && penalties[means.length - 1] * HALF_DECADE <= HEAVIEST_OWN * 1.01) {
+    penalties.push(penalties[means.length - 1] * HALF_DECADE);
+    errors.push(attempt(penalties[means.length]));
+    means.push(geometric(errors[means.length].map(total)));
+  }
   const common = means.findLastIndex((mean) => mean <= Math.min(...means) * (1 + TIE));
-  const picked = Array.from({ length: layout.signalCount }, (_, i) => {
-    const own = errors.map((perFold) => geometric(perFold.map((signals) => signals[i])));
-    const best = leastIndex(own);
-    return own[best] < own[common] * (1 - OWN_GAIN) ? best : common;
+  const still = folds.map(({ judge }) => lastValueErrors(judge, layout));
+  const picked = signals.map((i): { penalty: number | null; errors: number[] } => {
+    const own = errors.map((perFold) => perFold.map((bySignal) => bySignal[i]));
+    const ownMeans = own.map(geometric);
+    const least = leastIndex(ownMeans);
+    const best = ownMeans[least] < ownMeans[common] * (1 - OWN_GAIN) ? least : common;
+    const without = still.map((bySignal) => bySignal[i]);
+    if (gainsSurely(own[best], without, STILL_GAIN)) return { penalty: penalties[best], errors: own[best] };
+    return { penalty: null, errors: without };
   });
-  const chosen = folds.map((_, f) => Float64Array.from(picked, (k, i) => errors[k][f][i]));
-  return { penalties: picked.map((k) => OWN_PENALTIES[k]), error: geometric(chosen.map(total)) };
+  const totals = folds.map((_, f) => picked.reduce((sum, signal) => sum + signal.errors[f], 0));
+  return { penalties: picked.map(({ penalty }) => penalty), error: geometric(totals) };
+}
+
+/** (ny) mean squared errors of the last value, over the steps. */
+function lastValueErrors(judge: Moments, layout: Layout): Float64Array {
+  return signalErrors(
+    judge.energy.map((sum) => sum / judge.origins),
+    layout.steps,
+  );
+}
+
+/**
+ * Whether one choice's errors lie below another's: by more than a share on geometric average, and by more than folds that
+ * differ by chance would show in one case of ten. A single fold has only the share to go by.
+ */
+function gainsSurely(errors: readonly number[], others: readonly number[], share: number): boolean {
+  const gains = errors.map((error, f) => logOf(others[f]) - logOf(error));
+  const freedom = gains.length - 1;
+  const mean = total(Float64Array.from(gains)) / gains.length;
+  if (!(mean > -Math.log(1 - share))) return false;
+  if (freedom === 0) return true;
+  const squares = gains.reduce((sum, gain) => sum + (gain - mean) * (gain - mean), 0);
+  return mean >= STUDENT_90[freedom - 1] * Math.sqrt(squares / (freedom * gains.length));
 }
 
 /** Mean squared error of one signal's own map on the fold's judge, over the steps. */
@@ -183,7 +225,7 @@ interface CrossFold {
 }
 
 /** One penalty for the cross stage likewise; a signal is left out of it where it does not gain. */
-function chooseCross(folds: readonly Fold[], layout: Layout, penalties: readonly number[]): (number | null)[] {
+function chooseCross(folds: readonly Fold[], layout: Layout, penalties: readonly (number | null)[]): (number | null)[] {
   if (layout.channelCount === 1) return [null];
   const ready = folds.map((fold): CrossFold => {
     const own = ownMap(fold.learn, layout, penalties);
@@ -201,11 +243,14 @@ function chooseCross(folds: readonly Fold[], layout: Layout, penalties: readonly
   const coarse = best().penalty;
   tried.push(attempt(coarse / HALF_DECADE), attempt(coarse * HALF_DECADE));
   const common = best();
+  const still = folds.map(({ judge }) => lastValueErrors(judge, layout));
   const alone = ready.map(({ judge, own }) => signalErrors(mapError(judge, layout, own), layout.steps));
   return Array.from({ length: layout.signalCount }, (_, i) => {
-    const without = geometric(alone.map((signals) => signals[i]));
-    const joined = geometric(common.errors.map((signals) => signals[i]));
-    return joined < without * (1 - CROSS_GAIN) ? common.penalty : null;
+    const without = alone.map((signals) => signals[i]);
+    const joined = common.errors.map((signals) => signals[i]);
+    const isBetter = geometric(joined) < geometric(without) * (1 - CROSS_GAIN);
+    const lasting = still.map((signals) => signals[i]);
+    return isBetter && gainsSurely(joined, lasting, STILL_GAIN) ? common.penalty : null;
   });
 }
 
@@ -231,8 +276,12 @@ function total(values: Float64Array): number {
 
 function geometric(values: readonly number[]): number {
   let sum = 0;
-  for (const value of values) sum += Math.log(Math.max(value, Number.MIN_VALUE));
+  for (const value of values) sum += logOf(value);
   return Math.exp(sum / values.length);
+}
+
+function logOf(value: number): number {
+  return Math.log(Math.max(value, Number.MIN_VALUE));
 }
 
 function leastIndex(values: readonly number[]): number {

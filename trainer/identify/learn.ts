@@ -8,7 +8,7 @@ import { type Partition, partition, usableBlocks } from './blocks.ts';
 import { findDirections } from './bottleneck.ts';
 import { type Choice, choose } from './choose.ts';
 import type { Filled } from './fill.ts';
-import { addMoments, pickMoments } from './moment-sets.ts';
+import { aboutMeans, addMoments, pickMoments } from './moment-sets.ts';
 import { type Block, gatherMoments, type Moments } from './moments.ts';
 import { type Layout, twoStageMap } from './ridge.ts';
 
@@ -93,7 +93,7 @@ function layoutOf(input: LearnInput, bank: Bank): Layout {
 }
 
 function mapAndDirections(moments: Moments, layout: Layout, choice: Choice): Learned {
-  const map = twoStageMap(moments, layout, choice.ownPenalty, choice.crossPenalty);
+  const map = twoStageMap(aboutMeans(moments), layout, choice.ownPenalty, choice.crossPenalty);
   const covariance = steadyCovariance(moments, layout);
   return { covariance, map, layout, bottleneck: findDirections(covariance, map, layout, MOST_DIRECTIONS) };
 }

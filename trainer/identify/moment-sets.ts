@@ -19,14 +19,18 @@ export function addMoments(parts: readonly Moments[]): Moments {
   const features = parts[0].features.slice();
   const future = parts[0].future.slice();
   const energy = parts[0].energy.slice();
+  const featureSums = parts[0].featureSums.slice();
+  const futureSums = parts[0].futureSums.slice();
   let origins = parts[0].origins;
   for (const part of parts.slice(1)) {
     origins += part.origins;
     addTo(features, part.features);
     addTo(future, part.future);
     addTo(energy, part.energy);
+    addTo(featureSums, part.featureSums);
+    addTo(futureSums, part.futureSums);
   }
-  return { origins, features, future, energy };
+  return { origins, features, future, energy, featureSums, futureSums };
 }
 
 /**
@@ -61,9 +65,39 @@ export function pickMoments(
       future[a * cols.length + b] = moments.future[row * width + col];
     });
   });
-  return { origins: moments.origins, features, future, energy: Float64Array.from(cols, (col) => moments.energy[col]) };
+  return {
+    origins: moments.origins,
+    features,
+    future,
+    energy: Float64Array.from(cols, (col) => moments.energy[col]),
+    featureSums: Float64Array.from(rows, (row) => moments.featureSums[row]),
+    futureSums: Float64Array.from(cols, (col) => moments.futureSums[col]),
+  };
 }
 
 function addTo(into: Float64Array, what: Float64Array): void {
   for (let k = 0; k < into.length; k++) into[k] += what[k];
+}
+
+/**
+ * Sums about the means: what a fit with a constant term would see of features and future. The energy is left as it is.
+ *
+ * shapes  as the moments
+ * units   as the moments
+ * throws  nothing
+ * source  definition
+ * cost    O(p² + p ny H)
+ */
+export function aboutMeans(moments: Moments): Moments {
+  const { origins, featureSums, futureSums } = moments;
+  const features = moments.features.slice();
+  const future = moments.future.slice();
+  const p = featureSums.length;
+  const width = futureSums.length;
+  for (let f = 0; f < p; f++) {
+    const mean = featureSums[f] / origins;
+    for (let g = 0; g < p; g++) features[f * p + g] -= mean * featureSums[g];
+    for (let k = 0; k < width; k++) future[f * width + k] -= mean * futureSums[k];
+  }
+  return { ...moments, features, future };
 }

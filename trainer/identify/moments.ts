@@ -20,6 +20,10 @@ export interface Moments {
   readonly future: Float64Array;
   /** (ny·H) squared changes. */
   readonly energy: Float64Array;
+  /** (p) features. */
+  readonly featureSums: Float64Array;
+  /** (ny·H) changes. */
+  readonly futureSums: Float64Array;
 }
 
 /** Where moments are taken: `values` (nc) of (ticks), complete and standardised. */
@@ -115,6 +119,8 @@ function closeBlock(
     features: featureProducts(poles, nc, before, after, cross, simultaneous),
     future: summedAhead(stepwise, p, signalCount, horizon),
     energy: futureEnergy(input, block),
+    featureSums: summedFeatures(poles, changes, block, before, after),
+    futureSums: summedFuture(input, block),
   };
 }
 
@@ -209,6 +215,48 @@ function stepBack(
     }
   }
   return cross;
+}
+
+/** Σ φ(t): φ(t) = a φ(t-1) + drive Δ(t) summed, so (1 - a) Σ φ = a (before - after) + drive Σ Δ. */
+function summedFeatures(
+  poles: Poles,
+  changes: readonly Float64Array[],
+  block: Block,
+  before: Float64Array,
+  after: Float64Array,
+): Float64Array {
+  const out = new Float64Array(before.length);
+  const perChannel = before.length / changes.length;
+  changes.forEach((change, c) => {
+    let moved = 0;
+    for (let t = block.fromIndex; t < block.toIndex; t++) moved += change[t];
+    for (let m = 0; m < poles.count; m++) {
+      const f = c * perChannel + poles.feature[m];
+      const [aRe, aIm] = [poles.poleRe[m], poles.poleIm[m]];
+      const xRe = before[f] - after[f];
+      const xIm = poles.isComplex[m] === 1 ? before[f + 1] - after[f + 1] : 0;
+      const re = aRe * xRe - aIm * xIm + poles.driveRe[m] * moved;
+      const im = aRe * xIm + aIm * xRe + poles.driveIm[m] * moved;
+      const size = (1 - aRe) * (1 - aRe) + aIm * aIm;
+      out[f] = (re * (1 - aRe) - im * aIm) / size;
+      if (poles.isComplex[m] === 1) out[f + 1] = (im * (1 - aRe) + re * aIm) / size;
+    }
+  });
+  return out;
+}
+
+/** (ny·H) Σ y(t+h) - y(t), from one step to the next by the two ends. */
+function summedFuture({ values, signalCount, horizon }: MomentInput, block: Block): Float64Array {
+  const out = new Float64Array(signalCount * horizon);
+  for (let i = 0; i < signalCount; i++) {
+    const y = values[i];
+    let sum = 0;
+    for (let h = 1; h <= horizon; h++) {
+      sum += y[block.toIndex - 1 + h] - y[block.fromIndex - 1 + h];
+      out[i * horizon + h - 1] = sum;
+    }
+  }
+  return out;
 }
 
 function futureEnergy(input: MomentInput, block: Block): Float64Array {

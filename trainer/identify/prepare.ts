@@ -6,6 +6,7 @@ import { channelsOf } from '../history/channels.ts';
 import type { Series } from '../history/series.ts';
 import type { Surroundings } from '../quantise/float-model.ts';
 import type { Split } from '../requirements.ts';
+import { type Excursion, findExcursions, withoutExcursions } from './excursions.ts';
 import { type Filled, fillHistory, type PartEnds } from './fill.ts';
 import type { LearnInput } from './learn.ts';
 import { findPeriod } from './period.ts';
@@ -15,6 +16,8 @@ import { seasonOf } from './season.ts';
 /** Ready for learning. */
 export interface Prepared {
   readonly around: Omit<Surroundings, 'bank' | 'coverage' | 'boundsRate'>;
+  /** The history without its wild readings: what is learned and calibrated from. */
+  readonly calm: Series;
   readonly filled: Filled;
   readonly learnTicks: number;
   readonly calibrateTicks: number;
@@ -41,18 +44,17 @@ export function prepareHistory(
 ): Prepared {
   const learnTicks = split.learn.toTick - split.learn.fromTick;
   const calibrateTicks = split.calibrate.toTick - split.calibrate.fromTick;
-  const found = findScalings(
-    series,
-    learnTicks,
-    lattices.map((lattice) => lattice.step),
-  );
-  const scalings = found.map((scaling, c) => withinRange(scaling, channelsOf(site)[c]));
+  const steps = lattices.map((lattice) => lattice.step);
   const longGap = Math.max(LEAST_LONG_GAP, site.horizon);
   const ends = { learnTicks, calibrateEnd: learnTicks + calibrateTicks };
-  const first = fillHistory(series, scalings, 0, longGap, ends);
+  const excursions = findExcursions(series, steps, longGap, ends);
+  const calm = withoutExcursions(series, excursions);
+  const found = findScalings(calm, learnTicks, steps);
+  const scalings = found.map((scaling, c) => withinRange(scaling, channelsOf(site)[c]));
+  const first = fillHistory(calm, scalings, 0, longGap, ends);
   const learning = first.values.slice(0, series.signalCount).map((z) => z.subarray(0, learnTicks));
   const period = findPeriod(learning, series.tickMs);
-  const filled = period > 0 ? fillHistory(series, scalings, period, longGap, ends) : first;
+  const filled = period > 0 ? fillHistory(calm, scalings, period, longGap, ends) : first;
   return {
     around: {
       tickMs: series.tickMs,
@@ -63,10 +65,15 @@ export function prepareHistory(
       season: seasonOf(filled, series.signalCount, series.firstTick, learnTicks, period),
       warmupTicks: Math.max(2 * site.horizon, period, 32),
     },
+    calm,
     filled,
     learnTicks,
     calibrateTicks,
-    warnings: [...warningsOf(series, scalings, period), ...silentWhereBoundsAreSet(series, ends)],
+    warnings: [
+      ...warningsOf(series, scalings, period),
+      ...excursionWarnings(series, excursions, ends),
+      ...silentWhereBoundsAreSet(series, ends),
+    ],
   };
 }
 
@@ -113,6 +120,18 @@ function warningsOf(series: Series, scalings: readonly Scaling[], period: number
   });
   if (period === 0) warnings.push('No period was found, so forecasts follow recent readings alone.');
   return warnings;
+}
+
+/** What was wild before the judged part: where it lies is worth a look. */
+function excursionWarnings(series: Series, excursions: readonly Excursion[], ends: PartEnds): string[] {
+  return series.names.flatMap((name, c) => {
+    const own = excursions.filter(({ channel, toIndex }) => channel === c && toIndex <= ends.calibrateEnd);
+    if (own.length === 0) return [];
+    const ticks = own.reduce((sum, { fromIndex, toIndex }) => sum + toIndex - fromIndex, 0);
+    const [first] = own;
+    const at = new Date((series.firstTick + first.fromIndex) * series.tickMs).toISOString();
+    return `${name}: jumps away and back as nowhere else ${own.length === 1 ? `at ${at}` : `${own.length} times, first at ${at}`}; ${ticks === 1 ? '1 tick' : `${ticks} ticks`} left out of learning.`;
+  });
 }
 
 /** Signals whose bounds cannot be calibrated. */

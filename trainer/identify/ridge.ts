@@ -74,18 +74,20 @@ export function ridgeOwn(
 /**
  * Own-stage map of all signals, laid out over all features.
  *
- * shapes  penalties (ny); result (p × ny·steps)
+ * shapes  penalties (ny), null: zeros, the signal keeps its last value; result (p × ny·steps)
  * units   standardised change per feature
  * throws  as `ridgeOwn`
  * source  as `ridgeOwn`
  * cost    ny times `ridgeOwn`
  */
-export function ownMap(moments: Moments, layout: Layout, penalties: readonly number[]): Float64Array {
+export function ownMap(moments: Moments, layout: Layout, penalties: readonly (number | null)[]): Float64Array {
   const width = layout.signalCount * layout.steps;
   const out = new Float64Array(layout.channelCount * layout.featureCount * width);
   for (let i = 0; i < layout.signalCount; i++) {
+    const penalty = penalties[i];
+    if (penalty === null) continue;
     const chosen = ownFeatures(layout, i);
-    const map = ridgeOwn(moments, layout, i, chosen, penalties[i]);
+    const map = ridgeOwn(moments, layout, i, chosen, penalty);
     chosen.forEach((f, a) => {
       out.set(map.subarray(a * layout.steps, (a + 1) * layout.steps), f * width + i * layout.steps);
     });
@@ -130,7 +132,7 @@ export function crossSystem(
 export function twoStageMap(
   moments: Moments,
   layout: Layout,
-  ownPenalty: readonly number[],
+  ownPenalty: readonly (number | null)[],
   crossPenalty: readonly (number | null)[],
 ): Float64Array {
   const { steps, signalCount } = layout;

@@ -4,7 +4,6 @@
  * as on the gateway), and the map is learned once more from that. Spikes the guard would pass over are mended likewise.
  */
 import type { LinearModel } from '@stillwell/runtime/filter';
-import type { Series } from '../history/series.ts';
 import { calibrate } from '../judge/calibrate.ts';
 import { replay } from '../judge/replay.ts';
 import { floatModel, openCalibration } from '../quantise/float-model.ts';
@@ -41,17 +40,17 @@ const PASS_COVERAGE = 0.9;
  * source  fill by one's own forecast: Shumway & Stoffer, Journal of Time Series Analysis 3 (1982), means only
  * cost    one or two passes of learning, and one replay between them
  */
-export function teach(series: Series, prepared: Prepared): Taught {
+export function teach(prepared: Prepared): Taught {
   const first = learn(learnInput(prepared));
   const warnings = first.usesLongGaps
     ? ['Long gaps cover more than half of the history; they had to be bridged and learned from.']
     : [];
   const { choice, calibration: calibrationMoments, learned } = first;
   const isWhole = missingShare(prepared) < SECOND_PASS_SHARE;
-  const passing = isWhole ? null : passingModel(series, prepared, first);
+  const passing = isWhole ? null : passingModel(prepared, first);
   const base = { choice, calibrationMoments, passing, warnings };
   if (isWhole) return { ...base, learned };
-  return { ...base, learned: teachAgain(series, prepared, { choice, passing }, prepared.learnTicks) };
+  return { ...base, learned: teachAgain(prepared, { choice, passing }, prepared.learnTicks) };
 }
 
 /**
@@ -64,12 +63,11 @@ export function teach(series: Series, prepared: Prepared): Taught {
  * cost    one pass of learning, and one replay where readings are missing
  */
 export function teachAgain(
-  series: Series,
   prepared: Prepared,
   { choice, passing }: Pick<Taught, 'choice' | 'passing'>,
   ticks: number,
 ): Learned {
-  const filled = passing === null ? prepared.filled : refill(series, prepared, passing, ticks);
+  const filled = passing === null ? prepared.filled : refill(prepared, passing, ticks);
   return learnAgain({ ...learnInput(prepared), filled }, choice, ticks);
 }
 
@@ -81,8 +79,8 @@ function missingShare({ filled, around, learnTicks }: Prepared): number {
   return missing / (around.signalCount * learnTicks);
 }
 
-function passingModel(series: Series, prepared: Prepared, first: LearnOutput): LinearModel {
-  const { around, learnTicks, calibrateTicks } = prepared;
+function passingModel(prepared: Prepared, first: LearnOutput): LinearModel {
+  const { around, calm, learnTicks, calibrateTicks } = prepared;
   const { learned, choice } = first;
   const order = Math.min(PASS_ORDER, learned.bottleneck.carried.length);
   const factors = floatFactors(learned, order, Math.min(PASS_BASIS, around.horizon));
@@ -94,7 +92,7 @@ function passingModel(series: Series, prepared: Prepared, first: LearnOutput): L
   );
   const calibration = calibrate(
     open,
-    series,
+    calm,
     { fromTick: learnTicks, toTick: learnTicks + calibrateTicks },
     PASS_COVERAGE,
   );
@@ -102,9 +100,9 @@ function passingModel(series: Series, prepared: Prepared, first: LearnOutput): L
 }
 
 /** The completed history with the passing model's folded values in its first `ticks` ticks. */
-function refill(series: Series, { around, filled }: Prepared, passing: LinearModel, ticks: number): Filled {
+function refill({ around, calm, filled }: Prepared, passing: LinearModel, ticks: number): Filled {
   const values = filled.values.map((z) => z.slice());
-  replay(passing, series, { fromTick: 0, toTick: ticks }, ({ at, state }) => {
+  replay(passing, calm, { fromTick: 0, toTick: ticks }, ({ at, state }) => {
     for (let i = 0; i < around.signalCount; i++) if (state.started[i] === 1) values[i][at] = state.value[i];
   });
   return { ...filled, values };

@@ -9,18 +9,13 @@ import type { Calibration } from '../quantise/float-model.ts';
 import type { TickSpan } from '../span.ts';
 import { conformalRadius } from './coverage.ts';
 import { replay } from './replay.ts';
+import { REJECT_MOST_TICKS, REJECT_SD, robustScale } from './robust-scale.ts';
 
 /** Origins used are thinned to about this many: more does not move a 90 % quantile. */
 const MOST_ORIGINS = 4000;
-/** A reading this many robust standard deviations off is passed over … */
-const REJECT_SD = 10;
-/** … or this far beyond the jumps that stayed, where a plant jumps by itself. */
+/** The guard opens to this far beyond the jumps that stayed, where a plant jumps by itself. */
 const BEYOND_JUMPS = 1.2;
 const JUMP_QUANTILE = 0.995;
-const REJECT_MOST_TICKS = 3;
-/** Normal quantiles that make the median and the 90 % point of |error| estimates of a standard deviation. */
-const MEDIAN_FACTOR = 1.4826;
-const NINETY_FACTOR = 1 / 1.645;
 
 /**
  * Calibrates.
@@ -62,7 +57,7 @@ export function calibrate(model: LinearModel, series: Series, span: TickSpan, co
     }
   });
   const residualScale = Float64Array.from(first, (errors, c) =>
-    robustScale(errors, model.latticeStep[c] / model.scale[c]),
+    robustScale(Float64Array.from(errors), model.latticeStep[c] / model.scale[c]),
   );
   const widest = normalQuantile(0.5 + coverage / 2);
   const jumps = stayed.map((errors, i) => quantile(errors, JUMP_QUANTILE) / residualScale[i]);
@@ -79,13 +74,6 @@ export function calibrate(model: LinearModel, series: Series, span: TickSpan, co
 /** A standardised value back on the unscaled axis of `reading / scale`. */
 function zOf(model: LinearModel, channel: number, value: number): number {
   return value + model.mean[channel] / model.scale[channel];
-}
-
-/** Never below what the lattice alone would give, a step spread evenly. */
-function robustScale(errors: readonly number[], step: number): number {
-  if (errors.every(Number.isNaN)) return 1;
-  const floor = step / Math.sqrt(12);
-  return Math.max(MEDIAN_FACTOR * quantile(errors, 0.5), NINETY_FACTOR * quantile(errors, 0.9), floor);
 }
 
 /** 0 where there is no error to go by. */

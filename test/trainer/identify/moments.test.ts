@@ -1,7 +1,7 @@
 /** Moments by the bank's recursion against the slow, obvious route: every feature computed from its definition, and summed. */
 import { describe, expect, it } from 'vitest';
 import { type Bank, designBank, featureCount, settlingTicks } from '../../../trainer/identify/bank.ts';
-import { addMoments, pickMoments } from '../../../trainer/identify/moment-sets.ts';
+import { aboutMeans, addMoments, pickMoments } from '../../../trainer/identify/moment-sets.ts';
 import { type Block, gatherMoments, type Moments } from '../../../trainer/identify/moments.ts';
 import { recurrence } from '../../support/sample-bundle.ts';
 
@@ -25,6 +25,8 @@ function direct(block: Block): Moments {
   const features = new Float64Array(p * p);
   const future = new Float64Array(p * width);
   const energy = new Float64Array(width);
+  const featureSums = new Float64Array(p);
+  const futureSums = new Float64Array(width);
   for (let t = block.fromIndex; t < block.toIndex; t++) {
     const phi = new Float64Array(p);
     values.forEach((y, c) => {
@@ -53,18 +55,20 @@ function direct(block: Block): Moments {
       for (let h = 1; h <= horizon; h++) {
         const change = values[i]![t + h]! - values[i]![t]!;
         energy[i * horizon + h - 1]! += change * change;
+        futureSums[i * horizon + h - 1]! += change;
         for (let f = 0; f < p; f++) future[f * width + i * horizon + h - 1]! += phi[f]! * change;
       }
     }
+    for (let f = 0; f < p; f++) featureSums[f]! += phi[f]!;
     for (let f = 0; f < p; f++) for (let g = 0; g < p; g++) features[f * p + g]! += phi[f]! * phi[g]!;
   }
-  return { origins: block.toIndex - block.fromIndex, features, future, energy };
+  return { origins: block.toIndex - block.fromIndex, features, future, energy, featureSums, futureSums };
 }
 
 /** Sums over a hundred origins of numbers up to ten: a thousandfold of 1e-16 times their size. */
 function expectAlike(got: Moments, expected: Moments): void {
   expect(got.origins).toBe(expected.origins);
-  for (const key of ['features', 'future', 'energy'] as const) {
+  for (const key of ['features', 'future', 'energy', 'featureSums', 'futureSums'] as const) {
     const largest = expected[key].reduce((most, value) => Math.max(most, Math.abs(value)), 0);
     let worst = 0;
     for (let k = 0; k < expected[key].length; k++) worst = Math.max(worst, Math.abs(got[key][k]! - expected[key][k]!));
@@ -106,6 +110,18 @@ describe('gatherMoments', () => {
     expect(picked.features[5 * 6 + 0]).toBe(gathered[0]!.features[feature * p + 1]);
     expect(picked.future[5 * 4 + 3]).toBe(gathered[0]!.future[feature * 2 * horizon + horizon + 4]);
     expect(picked.energy[3]).toBe(gathered[0]!.energy[horizon + 4]);
+  });
+
+  it('takes sums about the means as a fit with a constant term would', () => {
+    const [block] = gathered;
+    const about = aboutMeans(block!);
+    const p = block!.featureSums.length;
+    const mean = block!.featureSums.map((sum) => sum / block!.origins);
+    // Σ (φ - m)(φ - m)' = Σ φφ' - n m m'
+    expect(about.features[7]).toBeCloseTo(block!.features[7]! - block!.origins * mean[0]! * mean[7]!, 9);
+    expect(about.features[3 * p + 3]).toBeLessThan(block!.features[3 * p + 3]!);
+    expect(about.future[2]).toBeCloseTo(block!.future[2]! - mean[0]! * block!.futureSums[2]!, 9);
+    expect(about.energy).toBe(block!.energy);
   });
 
   it('refuses a block whose future leaves the readings', () => {

@@ -27,6 +27,8 @@ const moments: Moments = {
     for (let t = 0; t < rows; t++) sum += y[t * width + j]! ** 2;
     return sum;
   }),
+  featureSums: multiplyTransposed(new Float64Array(rows).fill(1), x, 1, rows, p),
+  futureSums: multiplyTransposed(new Float64Array(rows).fill(1), y, 1, rows, width),
 };
 
 /** Ridge of one column on some features, row by row: penalty times each feature's own sum of squares. */
