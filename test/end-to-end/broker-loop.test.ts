@@ -118,9 +118,13 @@ describe.each(brokers)('on %s', (_, start, missing) => {
       copyFileSync(join(bundles, '.part'), join(bundles, 'second.swb'));
       await play(230, TICKS);
       await until('all sent segments are confirmed', () => gateway.engine.spool.waiting.length === 0, 15_000);
-      await until('the bundle is known', () => events.some((event) => event.event === 'bundle'));
-      await desk.collector.settle();
-      const [status] = await readStatus(desk.store);
+      // The folder of bundles is looked through again every two seconds; what waited is decoded after that.
+      let status = (await readStatus(desk.store))[0];
+      for (let tries = 0; status?.waitingForBundle !== 0 && tries < 100; tries++) {
+        await new Promise((resolve) => setTimeout(resolve, 100));
+        await desk.collector.settle();
+        status = (await readStatus(desk.store))[0];
+      }
       await gateway.stop();
       await plc.end();
       await desk.stop();
