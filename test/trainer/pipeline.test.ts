@@ -103,6 +103,18 @@ describe('fit', () => {
     expect(mean(hindcast.mse) / mean(hindcast.rivalMse, 12 * rival)).toBeLessThan(0.4);
   });
 
+  it('carries lags through to the gateway where the plant needs them', async () => {
+    const next = recurrence(41);
+    const normal = gaussians(() => next() / 2 ** 32);
+    const echo = new Float64Array(3000);
+    for (let t = 0; t < 3000; t++) echo[t] = Math.round(100 * (0.8 * (echo[t - 5] ?? 0) + normal())) / 100;
+    const result = await run(seriesOf(['level'], [echo]));
+    expect(result.chosen.bank).toMatch(/lags/);
+    // One step ahead only the noise of variance 1 is unknown: 590 origins, so three standard errors are 0.17.
+    expect(result.hindcast.mse[0]).toBeGreaterThan(0.83);
+    expect(result.hindcast.mse[0]).toBeLessThan(1.17);
+  });
+
   it('is not thrown by one wild spell among the readings it learns from', async () => {
     const wild = replaced(0, (value, t) => (t >= 500 && t < 510 ? value + 15 + 5 * (t % 2) : value));
     const [clean, result] = [await run(series), await run(wild)];

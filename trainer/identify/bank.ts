@@ -24,6 +24,9 @@ const SHORTEST_TURN_TICKS = 4;
 const SLOWEST_MEAN_PERIODS = 8;
 const SLOWEST_MEAN_HORIZONS = 4;
 const SLOWEST_WITHOUT_PERIOD = 16;
+/** Lags of recent readings, as far apart as they are old; and around a period no longer than this, where they stay cheap. */
+const RECENT_LAGS = [1, 2, 3, 5, 8, 13, 21, 34, 55] as const;
+const LONGEST_LAGGED_PERIOD = 64;
 
 /**
  * The widest bank worth trying on a history.
@@ -55,7 +58,13 @@ export function designBank(periodTicks: number, horizon: number, learnTicks: num
       }
     }
   }
-  return { decays, resonators, lags: [] };
+  return { decays, resonators, lags: lagsOf(periodTicks, longest) };
+}
+
+/** Recent lags, and those around the period: the same time a period ago, and its neighbours. */
+function lagsOf(periodTicks: number, longest: number): number[] {
+  const around = periodTicks > 0 && periodTicks <= LONGEST_LAGGED_PERIOD ? [-1, 0, 1].map((d) => periodTicks + d) : [];
+  return [...new Set([...RECENT_LAGS, ...around])].filter((lag) => lag <= longest).sort((a, b) => a - b);
 }
 
 /** Complex decay per tick of a resonator at the m-th harmonic of a period, memory tau. */

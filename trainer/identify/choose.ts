@@ -4,10 +4,11 @@
  * quicker still, but one block of a year is often unlike the next.
  */
 import { cholesky, solveCholesky } from '../linalg/cholesky.ts';
-import { type Bank, featureCount } from './bank.ts';
+import type { Bank } from './bank.ts';
 import { aboutMeans, addMoments, pickMoments } from './moment-sets.ts';
 import type { Moments } from './moments.ts';
 import { crossSystem, type Layout, mapError, ownFeatures, ownMap, ridgeOwn } from './ridge.ts';
+import { type BankSize, bankSizes, subBank } from './sub-banks.ts';
 
 /** What was chosen, with the validation error it had. */
 export interface Choice {
@@ -31,6 +32,8 @@ const HALF_DECADE = Math.sqrt(10);
 const LEAST_CROSS = 1e-4;
 /** A smaller bank, or a heavier penalty of the own stage, within this share of the best is preferred. */
 const TIE = 0.002;
+/** Lags are taken in for this gain: they cost bytes that the state could use. */
+const LAG_GAIN = 0.02;
 /**
  * A signal departs from the common penalty only for this gain, and takes the cross stage only for that one. Either stage
  * must also gain on doing without it surely: where folds disagree, it would follow chance.
@@ -63,9 +66,15 @@ export function choose(groups: readonly Moments[], bank: Bank, layout: Layout): 
   const all = Array.from({ length: layout.featureCount }, (_, f) => f);
   const wide = { ...layout, steps: steps.length };
   const folds = makeFolds(groups.map((moments) => pickMoments(moments, layout, all, steps)));
-  const candidates = banks(bank).map((candidate) => ({ ...candidate, own: chooseOwn(folds, wide, candidate.kept) }));
+  const attempt = (size: BankSize): Candidate => {
+    const candidate = subBank(bank, size);
+    return { ...candidate, size, own: chooseOwn(folds, wide, candidate.kept) };
+  };
+  const candidates = bankSizes(bank).map(attempt);
   const best = Math.min(...candidates.map((candidate) => candidate.own.error));
-  const { kept, own, ...picked } = candidates.find(({ own: { error } }) => error <= best * (1 + TIE)) ?? candidates[0];
+  const plain = candidates.find(({ own: { error } }) => error <= best * (1 + TIE)) ?? candidates[0];
+  const lagged = bank.lags.length > 0 ? attempt({ ...plain.size, lags: bank.lags.length }) : plain;
+  const { kept, own, ...picked } = lagged.own.error < plain.own.error * (1 - LAG_GAIN) ? lagged : plain;
   const trial = { ...wide, featureCount: kept.length };
   const narrow = (moments: Moments): Moments =>
     kept.length === all.length
@@ -112,25 +121,11 @@ function makeFolds(groups: readonly Moments[]): Fold[] {
   return folds;
 }
 
-/** Sub-banks from small to wide. */
-function banks(bank: Bank): { readonly bank: Bank; readonly kept: readonly number[] }[] {
-  const means = bank.decays.length;
-  const resonators = bank.resonators.length;
-  const sizes: (readonly [number, number])[] = [
-    [Math.min(4, means), 0],
-    [means, 0],
-    [means, Math.ceil(resonators / 3)],
-    [means, resonators],
-  ];
-  const distinct = sizes.filter(([m, r], at) => sizes.findIndex(([a, b]) => a === m && b === r) === at);
-  return distinct.map(([m, r]) => {
-    const kept: number[] = [];
-    for (let f = 0; f < m; f++) kept.push(f);
-    for (let f = 0; f < 2 * r; f++) kept.push(means + f);
-    const smaller = { decays: bank.decays.slice(0, m), resonators: bank.resonators.slice(0, r), lags: [] };
-    if (featureCount(smaller) !== kept.length) throw new RangeError('A sub-bank lost count of its features.');
-    return { bank: smaller, kept };
-  });
+interface Candidate {
+  readonly size: BankSize;
+  readonly bank: Bank;
+  readonly kept: readonly number[];
+  readonly own: ReturnType<typeof chooseOwn>;
 }
 
 /** (folds × ny) errors of one choice. */

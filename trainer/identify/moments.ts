@@ -5,9 +5,11 @@
  * product per tick, features against the readings' changes one horizon ahead, is enough: all nearer horizons follow
  * backwards by the feature's own recursion, and the features' products among themselves solve a scalar Stein equation.
  * Both carry exact terms for the block's two ends. Quicker than products of all features by the ratio of features to
- * channels, and equal to them to rounding. Lags are not recursions; they are taken by direct products.
+ * channels, and equal to them to rounding. Lags are no recursions of their own; their moments are joined after.
  */
 import { type Bank, featureCount } from './bank.ts';
+import { joinPoles, productsOfChanges, shiftBack } from './cross-steps.ts';
+import { type Rings, ringsOf, withLags } from './lag-moments.ts';
 import { advancePoles, flattenPoles, type Poles } from './poles.ts';
 import { featureProducts } from './stein.ts';
 
@@ -45,7 +47,7 @@ export interface Block {
  *
  * shapes  blocks ascending and disjoint; result one entry a block
  * units   values standardised; sums over origins
- * throws  RangeError if a block reaches outside the readings, or the bank holds lags
+ * throws  RangeError if a block reaches outside the readings
  * source  recursion of the cross moments: own derivation, checked in the tests against direct products; Stein equation of
  *         a filter bank's covariance: Byrnes, Georgiou & Lindquist, IEEE Trans. Signal Processing 48 (2000), section II
  * cost    O(T nc (p + nc H)) + O(p nc H + p²) a block
@@ -59,10 +61,10 @@ export function gatherMoments(input: MomentInput, blocks: readonly Block[]): Mom
       `Block ${block.fromIndex}..${block.toIndex} with horizon ${horizon} leaves the ${ticks} ticks.`,
     );
   }
-  if (bank.lags.length > 0) throw new RangeError('Moments are gathered for means and resonators only.');
+  const rings = ringsOf(values, bank.lags);
   const poles = flattenPoles(bank);
   const changes = values.map(difference);
-  const phi = new Float64Array(values.length * featureCount(bank));
+  const phi = new Float64Array(values.length * featureCount({ ...bank, lags: [] }));
   let at = 1;
   return blocks.map((block) => {
     for (; at < block.fromIndex; at++) advancePoles(poles, phi, changes, at);
@@ -72,7 +74,7 @@ export function gatherMoments(input: MomentInput, blocks: readonly Block[]): Mom
       advancePoles(poles, phi, changes, at);
       accumulate(furthest, phi, changes, at + horizon);
     }
-    return closeBlock(input, poles, changes, block, before, phi, furthest);
+    return closeBlock(input, poles, changes, block, before, phi, furthest, rings);
   });
 }
 
@@ -101,20 +103,24 @@ function closeBlock(
   before: Float64Array,
   after: Float64Array,
   furthest: Float64Array,
+  rings: Rings,
 ): Moments {
   const nc = changes.length;
   const p = before.length;
   const { horizon, signalCount } = input;
-  const lagged = laggedProducts(changes, block, horizon);
+  const lagged = productsOfChanges(changes, block, 0, horizon);
   const stepwise = new Float64Array(horizon * signalCount * p);
-  let cross = furthest;
+  const cross = furthest;
   for (let k = horizon; k >= 1; k--) {
-    if (k < horizon) cross = stepBack(poles, cross, changes, block, before, after, lagged, k);
+    if (k < horizon) {
+      shiftBack(cross, changes, block, before, after, k);
+      joinPoles(poles, cross, nc, lagged.subarray(k * nc * nc));
+    }
     stepwise.set(cross.subarray(0, signalCount * p), (k - 1) * signalCount * p);
   }
-  shiftEdges(cross, changes, block, before, after, 0);
+  shiftBack(cross, changes, block, before, after, 0);
   const simultaneous = lagged.subarray(0, nc * nc);
-  return {
+  const recursive = {
     origins: block.toIndex - block.fromIndex,
     features: featureProducts(poles, nc, before, after, cross, simultaneous),
     future: summedAhead(stepwise, p, signalCount, horizon),
@@ -122,6 +128,8 @@ function closeBlock(
     featureSums: summedFeatures(poles, changes, block, before, after),
     futureSums: summedFuture(input, block),
   };
+  if (rings.lags.length === 0) return recursive;
+  return withLags({ input, block, poles, changes, rings, before, after, cross, recursive });
 }
 
 /**
@@ -147,74 +155,6 @@ function summedAhead(stepwise: Float64Array, p: number, signalCount: number, hor
     }
   }
   return out;
-}
-
-/** (H × nc × nc) lagged[k, c, i] = Σ over the block's origins of Δ_c(t) Δ_i(t+k), k = 0..H-1. */
-function laggedProducts(changes: readonly Float64Array[], block: Block, horizon: number): Float64Array {
-  const nc = changes.length;
-  const out = new Float64Array(horizon * nc * nc);
-  for (let c = 0; c < nc; c++) {
-    const past = changes[c];
-    for (let i = 0; i < nc; i++) {
-      const ahead = changes[i];
-      for (let k = 0; k < horizon; k++) {
-        let sum = 0;
-        for (let t = block.fromIndex; t < block.toIndex; t++) sum += past[t] * ahead[t + k];
-        out[(k * nc + c) * nc + i] = sum;
-      }
-    }
-  }
-  return out;
-}
-
-/** From Σ φ(t) Δ(t+k+1) to Σ φ(t-1) Δ(t+k), both over the block's origins t; in place. */
-function shiftEdges(
-  cross: Float64Array,
-  changes: readonly Float64Array[],
-  block: Block,
-  before: Float64Array,
-  after: Float64Array,
-  k: number,
-): void {
-  const p = before.length;
-  for (let i = 0; i < changes.length; i++) {
-    const first = changes[i][block.fromIndex + k];
-    const last = changes[i][block.toIndex + k];
-    for (let f = 0; f < p; f++) cross[i * p + f] += before[f] * first - after[f] * last;
-  }
-}
-
-/** Σ φ(t) Δ_i(t+k) from the same at k + 1, by φ(t) = a φ(t-1) + drive Δ(t). */
-function stepBack(
-  poles: Poles,
-  cross: Float64Array,
-  changes: readonly Float64Array[],
-  block: Block,
-  before: Float64Array,
-  after: Float64Array,
-  lagged: Float64Array,
-  k: number,
-): Float64Array {
-  const nc = changes.length;
-  const p = before.length;
-  shiftEdges(cross, changes, block, before, after, k);
-  for (let i = 0; i < nc; i++) {
-    for (let c = 0; c < nc; c++) {
-      const together = lagged[(k * nc + c) * nc + i];
-      for (let m = 0; m < poles.count; m++) {
-        const f = i * p + (c * p) / nc + poles.feature[m];
-        const re = cross[f];
-        if (poles.isComplex[m] === 0) {
-          cross[f] = poles.poleRe[m] * re + poles.driveRe[m] * together;
-          continue;
-        }
-        const im = cross[f + 1];
-        cross[f] = poles.poleRe[m] * re - poles.poleIm[m] * im + poles.driveRe[m] * together;
-        cross[f + 1] = poles.poleRe[m] * im + poles.poleIm[m] * re + poles.driveIm[m] * together;
-      }
-    }
-  }
-  return cross;
 }
 
 /** Σ φ(t): φ(t) = a φ(t-1) + drive Δ(t) summed, so (1 - a) Σ φ = a (before - after) + drive Σ Δ. */

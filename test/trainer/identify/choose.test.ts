@@ -1,5 +1,6 @@
 /** What rolling origin settles on: the last value where nothing surely beats it, a map where something does. */
 import { describe, expect, it } from 'vitest';
+import { designBank, featureCount, settlingTicks } from '../../../trainer/identify/bank.ts';
 import { fillHistory } from '../../../trainer/identify/fill.ts';
 import { type LearnOutput, learn } from '../../../trainer/identify/learn.ts';
 import { findScalings } from '../../../trainer/identify/scaling.ts';
@@ -53,8 +54,29 @@ describe('choose', () => {
     expect(still?.learned.map.every((value) => value === 0)).toBe(true);
   });
 
+  it('takes lags in where the past comes back all at once, and not where means say as much', () => {
+    const echo = path(0, 3);
+    for (let t = 5; t < echo.length; t++) echo[t] = echo[t]! + 0.8 * echo[t - 5]!;
+    const { choice, learned: got } = learned([echo]);
+    expect(choice.bank.lags).toContain(5);
+    expect(got.layout.featureCount).toBe(featureCount(choice.bank));
+    expect(learned([path(0.9, 7)]).choice.bank.lags).toEqual([]);
+  });
+
   it('learns a map where there is something to learn', () => {
     const { choice } = learned([path(0.9, 7)]);
     expect(choice.ownPenalty[0]).not.toBeNull();
+  });
+});
+
+describe('designBank', () => {
+  it('holds means, resonators, recent lags and those around a short period', () => {
+    const bank = designBank(24, H, 4000);
+    expect(bank.decays.length).toBe(8);
+    expect(bank.resonators.length).toBe(18);
+    expect(bank.lags).toEqual([1, 2, 3, 5, 8, 13, 21, 23, 24, 25, 34, 55]);
+    expect(designBank(1440, H, 20_000).lags).toEqual([1, 2, 3, 5, 8, 13, 21, 34, 55]);
+    expect(designBank(0, H, 90).lags).toEqual([1, 2, 3, 5, 8]);
+    expect(settlingTicks({ decays: [], resonators: [], lags: bank.lags })).toBe(55);
   });
 });

@@ -1,0 +1,57 @@
+/** Parts of a bank: its first means, resonators and lags, so that one gathering of moments serves every size tried. */
+import { type Bank, featureCount } from './bank.ts';
+
+/** How many of each kind a sub-bank keeps, from the first on. */
+export interface BankSize {
+  readonly means: number;
+  readonly resonators: number;
+  readonly lags: number;
+}
+
+/**
+ * Sizes of banks without lags worth trying, from small to wide.
+ *
+ * shapes  none
+ * units   counts
+ * throws  nothing
+ * source  own choice
+ * cost    trivial
+ */
+export function bankSizes(bank: Bank): BankSize[] {
+  const means = bank.decays.length;
+  const resonators = bank.resonators.length;
+  const sizes: BankSize[] = [
+    { means: Math.min(4, means), resonators: 0, lags: 0 },
+    { means, resonators: 0, lags: 0 },
+    { means, resonators: Math.ceil(resonators / 3), lags: 0 },
+    { means, resonators, lags: 0 },
+  ];
+  return sizes.filter(
+    (size, at) => sizes.findIndex((other) => other.means === size.means && other.resonators === size.resonators) === at,
+  );
+}
+
+/**
+ * The sub-bank of a size, and which features of the whole bank it keeps within a channel.
+ *
+ * shapes  kept ascending
+ * units   none
+ * throws  nothing
+ * source  order of features: means, resonators, lags
+ * cost    trivial
+ */
+export function subBank(bank: Bank, size: BankSize): { readonly bank: Bank; readonly kept: readonly number[] } {
+  const smaller = {
+    decays: bank.decays.slice(0, size.means),
+    resonators: bank.resonators.slice(0, size.resonators),
+    lags: bank.lags.slice(0, size.lags),
+  };
+  const firstLag = bank.decays.length + 2 * bank.resonators.length;
+  const kept = [
+    ...smaller.decays.keys(),
+    ...Array.from({ length: 2 * size.resonators }, (_, f) => bank.decays.length + f),
+    ...Array.from(smaller.lags.keys(), (f) => firstLag + f),
+  ];
+  if (featureCount(smaller) !== kept.length) throw new RangeError('A sub-bank lost count of its features.');
+  return { bank: smaller, kept };
+}
