@@ -232,7 +232,7 @@ async function outcome(fleet: Fleet, runs: readonly MoteRun[], judged: readonly 
     figures: { data: DATA_NOTICE, motes: figures },
     lookAt: [
       `broker          ${fleet.broker.url}`,
-      `live forecasts  npm run stillwell -- watch --broker ${fleet.broker.url} --site ${runs[0].name}`,
+      `live forecasts  npx stillwell watch --broker ${fleet.broker.url} --site ${runs[0].name} --clock readings`,
     ],
     linger: (signal) => new Promise((resolve) => signal.addEventListener('abort', () => resolve(), { once: true })),
   };

@@ -224,7 +224,7 @@ function figuresOf({ site, scores, counts, desk, archive, memory }: SiteOutcome)
 function lookAt(fleet: Fleet, sites: readonly SiteRun[]): string[] {
   return [
     `broker          ${fleet.broker.url}`,
-    `live forecasts  npm run stillwell -- watch --broker ${fleet.broker.url} --site ${sites[0].name}`,
+    `live forecasts  npx stillwell watch --broker ${fleet.broker.url} --site ${sites[0].name} --clock readings`,
     `what the desk holds  npm run stillwell -- desk status --data ${fleet.archiveFolder}`,
   ];
 }

@@ -1,6 +1,6 @@
 /** `stillwell watch`: a site's forecasts in the terminal, live. */
 import { ADVISORY } from '@stillwell/protocol';
-import { Command } from 'commander';
+import { Command, Option } from 'commander';
 import type { WatchedSite } from '../desk/watch-view.ts';
 import { seconds, several } from '../option-values.ts';
 import { rootOption, siteNameOption } from '../topic-option.ts';
@@ -13,6 +13,7 @@ interface WatchCommandOptions {
   readonly once: boolean;
   readonly wait: number;
   readonly json: boolean;
+  readonly clock: 'wall' | 'readings';
 }
 
 /** The command, to be joined to the program. */
@@ -26,6 +27,11 @@ export function watchCommand(): Command {
     .option('--once', 'show what there is and end; exit code 1 when nothing came in time', false)
     .option('--wait <seconds>', 'with --once: how long to wait', seconds, 10)
     .option('--json', 'one JSON line per forecast', false)
+    .addOption(
+      new Option('--clock <kind>', 'what ages are counted from: the wall clock, or for replays the newest tick heard')
+        .choices(['wall', 'readings'])
+        .default('wall'),
+    )
     .addHelpText('after', '\nExample:\n  stillwell watch --broker mqtt://localhost:1883 --site pump-7 --signal level')
     .action(watch);
 }
@@ -37,16 +43,17 @@ async function watch(options: WatchCommandOptions): Promise<void> {
   const wanted = (site: WatchedSite): string[] => [...site.forecasts.keys()].filter(isWanted).sort();
   let site: WatchedSite = { site: options.site, forecasts: new Map(), state: null, health: null };
   let changedMs = 0;
+  const nowMs = (): number => (options.clock === 'wall' ? Date.now() : view.newestTickEndMs(site));
   const draw = (): void => {
     // A terminal that does not know its size says 0.
     const rows = process.stdout.rows || 24;
     const columns = process.stdout.columns || 80;
     // Home, then each line cleared to its end: redrawing in place does not flicker.
-    const screen = view.screenText(site, wanted(site), Date.now(), rows, columns).replaceAll('\n', '\x1b[K\n');
+    const screen = view.screenText(site, wanted(site), nowMs(), rows, columns).replaceAll('\n', '\x1b[K\n');
     process.stdout.write(`\x1b[H${screen}\x1b[K\x1b[J`);
   };
   const line = (signal: string): void => {
-    const one = view.viewOf(site.forecasts.get(signal)!, site.state, Date.now());
+    const one = view.viewOf(site.forecasts.get(signal)!, site.state, nowMs());
     process.stdout.write(`${options.json ? JSON.stringify({ site: site.site, ...one }) : view.viewLine(one)}\n`);
   };
   if (!options.json && !isLive) process.stdout.write(`${ADVISORY}\n`);

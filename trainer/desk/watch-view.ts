@@ -43,6 +43,12 @@ export interface SignalView {
   }[];
 }
 
+/** End of the newest tick that any message of the site stands for: the present of a replay. 0 before the first. */
+export function newestTickEndMs(site: WatchedSite): number {
+  const heard = [...site.forecasts.values(), ...(site.state === null ? [] : [site.state])];
+  return Math.max(0, ...heard.map((message) => Date.parse(message.origin) + message.tick_s * 1000));
+}
+
 /** The facts of one signal. */
 export function viewOf(forecast: ForecastMessage, state: StateMessage | null, nowMs: number): SignalView {
   const tickMs = forecast.tick_s * 1000;

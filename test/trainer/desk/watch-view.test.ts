@@ -2,7 +2,7 @@
 import { ADVISORY, forecastMessage, parseForecastMessage, parseStateMessage, stateMessage } from '@stillwell/protocol';
 import { describe, expect, test } from 'vitest';
 import { bandPlot } from '../../../trainer/desk/band-plot.ts';
-import { screenText, viewLine, viewOf } from '../../../trainer/desk/watch-view.ts';
+import { newestTickEndMs, screenText, viewLine, viewOf } from '../../../trainer/desk/watch-view.ts';
 
 const ORIGIN = Date.UTC(2026, 4, 1, 12);
 const head = {
@@ -60,6 +60,14 @@ describe('a forecast within its time', () => {
     expect(Math.max(...screen.map((line) => line.length))).toBeLessThanOrEqual(120);
     expect(screen.slice(-4).join(' ')).toContain(ADVISORY.slice(-60));
     expect(screen.join('\n')).toMatch(/[░▁▂▃▄▅▆▇█]/);
+  });
+});
+
+describe('the present of a replay', () => {
+  test('is the end of the newest tick heard, so that a replayed forecast is not stale', () => {
+    expect(newestTickEndMs(site)).toBe(ORIGIN + 60_000);
+    expect(newestTickEndMs({ ...site, forecasts: new Map(), state: null })).toBe(0);
+    expect(viewOf(forecast, state, newestTickEndMs(site)).isStale).toBe(false);
   });
 });
 
