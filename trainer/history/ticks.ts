@@ -1,6 +1,7 @@
 /**
  * A history laid on the site's ticks: sorted by time, implausible readings left out, one value a tick by each signal's
- * aggregate, every value on its lattice. The survey tells what was left out.
+ * aggregate, every value on its lattice; in sums and counters a row written twice counts once. The survey tells what was
+ * left out.
  */
 import { createHash } from 'node:crypto';
 import { latticeIndex, latticeValue, type Signal, type Site } from '@stillwell/protocol';
@@ -44,6 +45,24 @@ function tickSpan(
   return readings === 0 ? null : { first: Math.floor(first / tickMs), last: Math.floor(last / tickMs), readings };
 }
 
+/**
+ * Tells rows that a logger wrote twice: the same value at the same time. In sums they would count twice, and a counter
+ * that went on in between would seem to have been reset.
+ */
+class RepeatFilter {
+  #time = Number.NaN;
+  readonly #values: number[] = [];
+
+  /** Times must not fall. */
+  isRepeat(time: number, value: number): boolean {
+    if (time !== this.#time) this.#values.length = 0;
+    this.#time = time;
+    if (this.#values.includes(value)) return true;
+    this.#values.push(value);
+    return false;
+  }
+}
+
 function layChannel(
   channel: ChannelReadings,
   signal: Signal,
@@ -54,6 +73,7 @@ function layChannel(
   const laid = new Float64Array(span.ticks).fill(Number.NaN);
   const { low, high } = plausibleSpan(signal, channel.values);
   const tick = new TickValue(signal.aggregate);
+  const repeats = signal.aggregate === 'sum' || signal.aggregate === 'increment' ? new RepeatFilter() : null;
   let open = -1;
   const close = (): void => {
     const value = tick.close();
@@ -64,6 +84,7 @@ function layChannel(
     const i = order === null ? n : (order[n] as number);
     const value = channel.values[i] as number;
     if (!(value >= low && value <= high)) continue;
+    if (repeats?.isRepeat(channel.times[i] as number, value)) continue;
     const k = Math.floor((channel.times[i] as number) / span.tickMs) - span.first;
     if (k !== open) {
       if (open >= 0) close();

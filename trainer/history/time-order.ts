@@ -1,6 +1,6 @@
 /**
  * Times out of order and repeated. Both are accepted: readings are sorted, and what falls together into a tick is joined
- * by the signal's aggregate.
+ * by the signal's aggregate, where rows that repeat time and value count once in sums.
  */
 import { counted, type Finding, iso, lengthOf } from './finding.ts';
 import type { ChannelReadings } from './history.ts';
@@ -64,7 +64,7 @@ export function timeOrderFindings(name: string | null, channel: ChannelReadings,
       weight: 'look',
       ...at(steps.firstRepeatMs),
       count: steps.repeated,
-      sentence: `${who} repeats a time ${counted(steps.repeated, 'time')}, first at ${iso(steps.firstRepeatMs)}; all were kept and joined by the aggregate.`,
+      sentence: `${who} repeats a time ${counted(steps.repeated, 'time')}, first at ${iso(steps.firstRepeatMs)}; they were joined by the aggregate, rows of equal value counted once in sums.`,
       advice: 'Check for files that overlap, or for a clock that was put back.',
     });
   if (steps.setBack > 0 && steps.setBack < 20 && steps.back < channel.times.length / 2)

@@ -104,6 +104,31 @@ describe('from file to ticks', () => {
       [Number.NaN, 1, Number.NaN],
     ]);
   });
+  it('counts a row written twice once in sums and counters, and no other row less', async () => {
+    const rows = [
+      ['00:00:10', 2, 100],
+      ['00:00:10', 2, 100],
+      ['00:00:10', 3, 104],
+      ['00:00:10', 2, 100],
+      ['00:00:20', 2, 104],
+      ['00:01:00', 2, 110],
+      ['00:01:00', 2, 110],
+    ].map(([time, rain, total]) => `2024-01-01T${time}Z,${rain},${total},${rain}`);
+    const file = folder.write('twice.csv', `time,rain,total,mean\n${rows.join('\n')}\n`);
+    const asked = site([
+      signal('rain', { aggregate: 'sum' }),
+      signal('total', { aggregate: 'increment' }),
+      signal('mean', { aggregate: 'mean', resolution: 0.1 }),
+    ]);
+    const { series, survey } = await loadHistory([file], asked, { zone: null });
+    expect(series.values.map((one) => [...one])).toEqual([
+      [2 + 3 + 2, 2],
+      [4, 6],
+      [(2 + 2 + 3 + 2 + 2) / 5, 2],
+    ]);
+    expect(JSON.stringify(survey)).toMatch(/rows of equal value counted once in sums/);
+  });
+
   it('keeps a span of time, its end left out', async () => {
     const path = folder.write(
       's.csv',
