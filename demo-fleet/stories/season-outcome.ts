@@ -225,6 +225,6 @@ function lookAt(fleet: Fleet, sites: readonly SiteRun[]): string[] {
   return [
     `broker          ${fleet.broker.url}`,
     `live forecasts  npx stillwell watch --broker ${fleet.broker.url} --site ${sites[0].name} --clock readings`,
-    `what the desk holds  npm run stillwell -- desk status --data ${fleet.archiveFolder}`,
+    `what the desk holds  npx stillwell desk status --data ${fleet.archiveFolder}`,
   ];
 }
