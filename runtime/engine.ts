@@ -7,13 +7,14 @@ import { latticeIndex, type Site } from '@stillwell/protocol';
 import type { BundleKeeper } from './bundle/change.ts';
 import type { Disk } from './disk.ts';
 import { Counters } from './health.ts';
-import { Aligner, type LateChange, type OpenReadings } from './ingest/align.ts';
+import { Aligner, type LateChange } from './ingest/align.ts';
 import { type DecodedReading, ReadingDecoder } from './ingest/decode.ts';
 import { refusedBecause } from './ingest/quality.ts';
 import { RecentTicks } from './ingest/recent.ts';
 import { Journal, type JournalPosition } from './residuals/journal.ts';
 import { type Identity, openIdentity, type Recovered, recover, renewIdentity } from './residuals/recover.ts';
 import { Spool } from './residuals/spool.ts';
+import { eachReading, type WalRecord } from './residuals/wal.ts';
 import { type CheckedBundle, Serving } from './serving.ts';
 
 /** What an engine is made of. */
@@ -101,14 +102,20 @@ export class Engine {
   close(nowMs: number | null): number {
     const due = this.aligner.due(nowMs);
     if (due > MAX_GAP_TICKS) this.#jump(due);
-    return this.aligner.close(nowMs, ({ tick, values }) => this.#fold(tick, values, true));
+    return this.aligner.close(
+      nowMs,
+      ({ tick, values }) => this.#fold(tick, values, true),
+      () => this.#turnIfDue(),
+    );
   }
 
-  /** Closes the open segment if it is due, or tries again what the disk refused. Call when forecasts are out. */
+  /** Hands the record to the disk, and closes the open segment if it is due. Call when forecasts are out. */
   settle(retry = false): void {
     const journal = this.#journal;
     if (journal === null || this.#serving === null) return;
-    if (journal.isDue || (retry && journal.fault !== null)) journal.turnOver(this.#serving, this.#serving);
+    if (retry && journal.fault !== null) journal.turnOver(this.#serving, this.#serving);
+    this.#turnIfDue();
+    journal.flush();
   }
 
   /** Puts a bundle to work: warmed on the recent ticks, changed at the present tick boundary. */
@@ -127,10 +134,10 @@ export class Engine {
     if (this.#serving !== null) this.#serving.checked = checked;
   }
 
-  /** Leaves everything on disk, the readings of open ticks too. */
+  /** Leaves everything on disk. */
   stop(): void {
     this.settle();
-    this.#journal?.stop(this.aligner.openReadings());
+    this.#journal?.stop();
   }
 
   #start(keeper: BundleKeeper, recovered: Recovered | null): void {
@@ -160,23 +167,38 @@ export class Engine {
       return false;
     }
     if (tornBytes > 0) this.#options.note('warn', `journal: ${tornBytes} torn bytes cut off`);
+    for (const record of earlier) {
+      if (record.kind === 'tick') this.#recent.push(record.tick, record.values);
+      this.#align(record);
+    }
+    if (serving.tick >= 0 && this.aligner.nextTick !== serving.tick + 1) this.aligner.startAt(serving.tick + 1);
     this.#serving = serving;
     this.#journal = this.#openJournal();
     this.#journal.resume(checkpoint.state, validBytes, kept);
-    for (const record of earlier) if (record.kind === 'tick') this.#recent.push(record.tick, record.values);
-    if (serving.tick >= 0) this.aligner.startAt(serving.tick + 1);
-    let open: OpenReadings | null = null;
-    for (const record of records) {
-      open = record.kind === 'open' ? record.open : null;
-      // Where a shorter segment length closed the segment on the way, the rest belongs into the next journal file.
-      const isNew = this.#journal.number !== checkpoint.number;
-      if (record.kind === 'tick') this.#fold(record.tick, record.values, isNew);
-      if (record.kind === 'change') this.#correct(record, isNew);
-    }
-    if (this.#serving.tick >= 0) this.aligner.startAt(this.#serving.tick + 1);
-    if (open !== null) this.aligner.restore(open);
+    for (const record of records) this.#replay(record, checkpoint.number);
     this.counters.ticks = 0;
+    this.counters.corrections = 0;
     return true;
+  }
+
+  /** Takes one frame in again of the journal file that the checkpoint names. */
+  #replay(record: WalRecord, from: number): void {
+    if (record.kind === 'tick') this.#turnIfDue();
+    this.#align(record);
+    // Where a shorter segment length closed the segment on the way, the rest belongs into the next journal file.
+    const isNew = this.#journal!.number !== from;
+    if (record.kind === 'tick') this.#fold(record.tick, record.values, isNew);
+    else if (record.kind === 'change') this.#correct(record, isNew);
+    else if (record.kind === 'readings' && isNew)
+      eachReading(record, (channel, timeMs, value) => this.#journal?.reading(channel, timeMs, value));
+  }
+
+  /** What the aligner knew when a frame of the journal was written. */
+  #align(record: WalRecord): void {
+    if (record.kind === 'start') this.aligner.restore(record.marks);
+    else if (record.kind === 'tick') this.aligner.replayClose(record.tick);
+    else if (record.kind === 'readings')
+      eachReading(record, (channel, timeMs, value) => this.aligner.replay(channel, timeMs, value));
   }
 
   #openJournal(): Journal {
@@ -186,7 +208,18 @@ export class Engine {
     const { stream } = this.identity;
     const keepTicks = RECENT_TICKS;
     return new Journal(
-      { disk, folder, site: site.site, gateway, stream, spool, segmentTicks, keepTicks, channelCount },
+      {
+        disk,
+        folder,
+        site: site.site,
+        gateway,
+        stream,
+        spool,
+        segmentTicks,
+        keepTicks,
+        channelCount,
+        openReadings: () => this.aligner.openReadings(),
+      },
       this.#position,
     );
   }
@@ -214,7 +247,13 @@ export class Engine {
     else {
       this.counters.readings++;
       if (placed !== 'taken') this.counters.late++;
+      this.#journal?.reading(channel, timeMs ?? arrivalMs, value);
     }
+  }
+
+  /** At a tick boundary, when the aligner knows of the tick ahead only as open. */
+  #turnIfDue(): void {
+    if (this.#serving !== null && this.#journal?.isDue) this.#journal.turnOver(this.#serving, this.#serving);
   }
 
   /** toDisk  false for what the open journal file holds already */
@@ -224,7 +263,6 @@ export class Engine {
     this.#recent.push(tick, values);
     this.counters.ticks++;
     if (serving === null || journal === null) return;
-    if (journal.isDue) journal.turnOver(serving, serving);
     if (toDisk) journal.tick(tick, values);
     serving.step(tick, values);
     journal.coded(serving);

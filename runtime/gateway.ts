@@ -11,19 +11,25 @@ import { type Connection, type ConnectionEvent, openConnection } from './mqtt/co
 import { dispatch, filtersOf } from './mqtt/subscriptions.ts';
 import type { GatewayPorts } from './ports.ts';
 import { Publisher } from './publish/publisher.ts';
+import { GroupSync } from './residuals/group-sync.ts';
 import { Shipper } from './residuals/ship.ts';
 
 /** A wall clock before 2020 was never set: only the readings' own times can then be believed. */
 const CLOCK_UNSET_MS = Date.UTC(2020, 0, 1);
 /** The loop comes round at least so often, for whatever is due. */
 const PULSE_MS = 500;
+/** What nobody waits for, readings of QoS 0 and closed ticks, is synced so often. */
 const SYNC_MS = 1000;
+/** A bundle left in the data folder is looked for so often. */
+const LOOK_MS = 1000;
 const RETRY_DISK_MS = 30_000;
 /** How long a start waits for the broker's kept messages before the wall clock may close ticks. */
 const SETTLE_MS = 1000;
 const SETTLE_AT_MOST_MS = 10_000;
 const CATCHING_UP_TICKS = 3;
 const SESSION_EXPIRY_SECONDS = 3600;
+/** For a message that must come again. */
+const NEVER = new Promise<void>(() => {});
 
 /** A bundle file put here is taken in, checked, and removed. */
 export function incomingPath(folder: string): string {
@@ -38,6 +44,7 @@ export class Gateway {
   readonly #keeper: BundleKeeper;
   readonly #topics: ReturnType<typeof topicsOf>;
   readonly #shipper: Shipper;
+  readonly #groupSync: GroupSync;
   readonly #connection: Connection;
   readonly #publisher: Publisher;
   #status: HealthStatus = 'starting';
@@ -46,7 +53,7 @@ export class Gateway {
   #cancelPulse: () => void = () => {};
   #isPublishDue = false;
   #holdUntil: number;
-  #syncedAt = 0;
+  #lookedAt = 0;
   #retriedAt = 0;
   #saidFault: string | null = null;
   #isStopping = false;
@@ -74,6 +81,7 @@ export class Gateway {
       this.#keeper,
     );
     this.#holdUntil = clock.monotonic() + SETTLE_AT_MOST_MS;
+    this.#groupSync = new GroupSync({ clock, sync: async () => this.engine.journal?.syncSoon() });
     this.#connection = this.#connect();
     this.#publisher = new Publisher(config, ports, this.#connection, this.#topics);
     this.#shipper = new Shipper({
@@ -148,6 +156,7 @@ export class Gateway {
     this.#isStopping = true;
     this.#cancelPulse();
     this.engine.stop();
+    this.#groupSync.release();
     this.#status = 'stopped';
     await this.#publisher.health(this.#report());
     await this.#connection.end();
@@ -173,7 +182,7 @@ export class Gateway {
       sessionExpirySeconds: SESSION_EXPIRY_SECONDS,
       will: Publisher.will(this.#config, this.#ports, this.#topics.health),
       ...(firstRetryMs === undefined ? {} : { backOff: { firstMs: firstRetryMs } }),
-      onMessage: (topic, payload) => this.#take(topic, payload),
+      onMessage: (topic, payload, { qos }) => this.#take(topic, payload, qos),
       onState: (event) => this.#onConnection(event),
     });
   }
@@ -196,8 +205,9 @@ export class Gateway {
     } else log.error(event.reason);
   }
 
-  #take(topic: string, payload: Uint8Array): void {
-    if (this.#isStopping) return;
+  /** The promise, if any, resolves when a message of QoS 1 may be acknowledged. */
+  #take(topic: string, payload: Uint8Array, qos: number): Promise<void> | void {
+    if (this.#isStopping) return NEVER;
     try {
       dispatch(
         this.#topics,
@@ -212,6 +222,7 @@ export class Gateway {
     } catch (error) {
       this.#ports.log.error(`message on ${topic} not handled: ${(error as Error).message}`);
     }
+    if (qos > 0 && this.engine.journal?.isDurable === false) return this.#groupSync.wait();
   }
 
   #reading(topic: string, payload: Uint8Array): void {
@@ -245,9 +256,9 @@ export class Gateway {
     const { clock } = this.#ports;
     this.#closeTicks();
     const now = clock.monotonic();
-    if (now - this.#syncedAt >= SYNC_MS) {
-      this.#syncedAt = now;
-      if (this.engine.journal?.isDirty) void this.engine.journal.syncSoon();
+    if (this.engine.journal?.isDirty && this.#groupSync.ageMs >= SYNC_MS) this.#groupSync.now();
+    if (now - this.#lookedAt >= LOOK_MS) {
+      this.#lookedAt = now;
       this.takeIncoming();
     }
     const isRetry = now - this.#retriedAt >= RETRY_DISK_MS;

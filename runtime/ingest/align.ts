@@ -45,16 +45,21 @@ export interface ClosedTick {
   readonly values: Float64Array;
 }
 
-/** Readings of ticks still open, so that a clean stop loses none. */
-export interface OpenReadings {
+/** What the readings so far leave behind beside themselves. */
+export interface ReadingMarks {
+  /** -Infinity before the first reading. */
   readonly newestMs: number;
-  readonly channels: readonly number[];
-  readonly times: readonly number[];
-  readonly values: readonly number[];
   /** (nc) last counter readings, NaN where unknown. */
   readonly counters: readonly number[];
   /** (nc) times of the newest readings, NaN where there was none. */
   readonly latest: readonly number[];
+}
+
+/** Readings of ticks still open, for the journal. */
+export interface OpenReadings {
+  readonly marks: ReadingMarks;
+  /** Visits them by tick, then channel, then arrival. */
+  visit(take: (channel: number, timeMs: number, value: number) => void): void;
 }
 
 const DEFAULT_REMEMBER_TICKS = 720;
@@ -134,17 +139,18 @@ export class Aligner {
   }
 
   /**
-   * Closes every tick that ended `latenessMs` or more before `nowMs`, in order, each by one call.
+   * Closes every tick that ended `latenessMs` or more before `nowMs`, in order.
    *
-   * nowMs  the wall clock, or null: the newest reading's time
+   * nowMs   the wall clock, or null: the newest reading's time
+   * onTick  called for each tick
+   * before  called for each, while it is still open
    */
-  close(nowMs: number | null, onTick: (closed: ClosedTick) => void): number {
+  close(nowMs: number | null, onTick: (closed: ClosedTick) => void, before: () => void = () => {}): number {
     const first = this.#nextTick ?? this.#firstTick();
     const end = first + this.#ticksDone(nowMs, first);
     for (let tick = first; tick < end; tick++) {
-      this.#fold(tick);
-      this.#nextTick = tick + 1;
-      this.#ticks.delete(tick - this.#rememberTicks);
+      before();
+      this.#shut(tick);
       onTick({ tick, values: this.#values });
     }
     return end - first;
@@ -155,35 +161,42 @@ export class Aligner {
     return this.#ticksDone(nowMs, this.#nextTick ?? this.#firstTick());
   }
 
-  /** Readings not yet in a closed tick, for the file a clean stop leaves. */
+  /** Readings not yet in a closed tick, with all that is needed to go on from them. */
   openReadings(): OpenReadings {
-    const channels: number[] = [];
-    const times: number[] = [];
-    const values: number[] = [];
-    for (const tick of [...this.#ticks.keys()].sort((a, b) => a - b)) {
-      if (this.#nextTick !== null && tick < this.#nextTick) continue;
-      this.#ticks.get(tick)!.forEach((readings, channel) => {
-        for (let i = 0; readings && i < readings.times.length; i++) {
-          channels.push(channel);
-          times.push(readings.times[i]!);
-          values.push(readings.values[i]!);
-        }
-      });
-    }
-    const latest = [...this.lastReadingMs];
-    return { newestMs: this.#newestMs, channels, times, values, counters: [...this.#counters], latest };
+    const marks = { newestMs: this.#newestMs, counters: [...this.#counters], latest: [...this.lastReadingMs] };
+    const open = [...this.#ticks.keys()].filter((tick) => this.#nextTick === null || tick >= this.#nextTick);
+    open.sort((a, b) => a - b);
+    return {
+      marks,
+      visit: (take) => {
+        for (const tick of open)
+          this.#ticks.get(tick)?.forEach((readings, channel) => {
+            for (let i = 0; readings && i < readings.times.length; i++)
+              take(channel, readings.times[i]!, readings.values[i]!);
+          });
+      },
+    };
   }
 
-  /** Takes back what `openReadings` gave. */
-  restore(open: OpenReadings): void {
-    this.#counters.set(open.counters.slice(0, this.#counters.length));
-    this.lastReadingMs.set(open.latest.slice(0, this.#counters.length));
-    for (let i = 0; i < open.times.length; i++) {
-      const tick = Math.floor(open.times[i]! / this.#options.tickMs);
-      if (this.#append(tick, open.channels[i]!, open.times[i]!, open.values[i]!) === 'taken')
-        this.#noteTime(open.channels[i]!, open.times[i]!);
-    }
-    this.#newestMs = Math.max(this.#newestMs, open.newestMs);
+  /** Takes back the marks that `openReadings` gave. */
+  restore({ newestMs, counters, latest }: ReadingMarks): void {
+    this.#counters.set(counters.slice(0, this.#counters.length));
+    this.lastReadingMs.set(latest.slice(0, this.#counters.length));
+    this.#newestMs = Math.max(this.#newestMs, newestMs);
+  }
+
+  /** Takes a reading in again that was placed before a restart, without asking anew whether it may be. */
+  replay(channel: number, timeMs: number, value: number): void {
+    const tick = Math.floor(timeMs / this.#options.tickMs);
+    const isLate = this.#nextTick !== null && tick < this.#nextTick;
+    if (isLate && !this.#isRemembered(tick, channel)) return;
+    if (this.#append(tick, channel, timeMs, value) === 'taken' && !isLate) this.#noteTime(channel, timeMs);
+  }
+
+  /** Closes a tick again that was closed before a restart; those before it are then closed too. */
+  replayClose(tick: number): void {
+    if (this.#nextTick !== tick) this.startAt(tick);
+    this.#shut(tick);
   }
 
   #firstTick(): number {
@@ -237,10 +250,8 @@ export class Aligner {
     value: number,
     onChange: (change: LateChange) => void,
   ): Placed {
-    if (tick < Math.max(this.#closedFrom, this.#nextTick! - this.#rememberTicks)) return 'too-late';
-    const how = this.#options.aggregates[channel]!;
-    // The next tick's increment has counted it already, from the counter reading before.
-    if (how === 'increment') return 'late-unchanged';
+    if (tick < this.#rememberedFrom()) return 'too-late';
+    if (!this.#isRemembered(tick, channel)) return 'late-unchanged';
     const before = this.#aggregate(tick, channel);
     const placed = this.#append(tick, channel, timeMs, value);
     if (placed !== 'taken') return placed;
@@ -250,9 +261,26 @@ export class Aligner {
     return 'corrected';
   }
 
+  /** First closed tick whose readings are still known. */
+  #rememberedFrom(): number {
+    return Math.max(this.#closedFrom, (this.#nextTick ?? 0) - this.#rememberTicks);
+  }
+
+  /** Whether a late reading may still change a tick: an increment's next tick has counted it already. */
+  #isRemembered(tick: number, channel: number): boolean {
+    return tick >= this.#rememberedFrom() && this.#options.aggregates[channel] !== 'increment';
+  }
+
   #aggregate(tick: number, channel: number): number {
     const readings = this.#ticks.get(tick)?.[channel];
     return readings ? aggregateTick(this.#options.aggregates[channel]!, readings, Number.NaN) : Number.NaN;
+  }
+
+  /** Leaves the tick's values in the buffer and counts it among the closed. */
+  #shut(tick: number): void {
+    this.#fold(tick);
+    this.#nextTick = tick + 1;
+    this.#ticks.delete(tick - this.#rememberTicks);
   }
 
   #fold(tick: number): void {

@@ -8,6 +8,7 @@
  */
 import { type IClientOptions, MqttClient, UniqueMessageIdProvider } from 'mqtt';
 import { RuntimeError } from '../errors.ts';
+import { Acknowledgements } from './acknowledge.ts';
 import { backOffMs } from './back-off.ts';
 import { openStream, parseBrokerUrl } from './stream.ts';
 import { asBuffer, plainReason, publishOptions, willOptions } from './translate.ts';
@@ -22,6 +23,8 @@ const CONNECT_TIMEOUT_MS = 15_000;
 /** Fixed header, properties and packet id around topic and payload, generously. */
 const PACKET_OVERHEAD_BYTES = 128;
 const OWN_WINDOW = 16;
+/** Messages that an MQTT 5 broker may leave unacknowledged with us; without a word it may be 65,535, all counted as queued. */
+const RECEIVE_MAXIMUM = 100;
 const TAKE_OVERS_BEFORE_STOP = 3;
 /** A connection that held so long was a good one. */
 const STABLE_MS = 10_000;
@@ -182,12 +185,17 @@ class LastingConnection implements Connection {
       this.#clientOptions(version),
     );
     this.#client = client;
+    const acknowledgements = new Acknowledgements((bytes) => {
+      if (!over && client.stream.writable) client.stream.write(bytes);
+    });
+    client.on('packetreceive', (packet) => acknowledgements.claim(packet));
     client.handleMessage = (packet, done) => {
-      this.#options.onMessage?.(packet.topic, new Uint8Array(asBuffer(packet.payload)), {
-        qos: packet.qos,
+      const taken = this.#options.onMessage?.(packet.topic, new Uint8Array(asBuffer(packet.payload)), {
+        qos: acknowledgements.isOwed(packet) ? 1 : packet.qos,
         retain: packet.retain,
         duplicate: packet.dup,
       });
+      acknowledgements.settle(packet, taken);
       done();
     };
     client.on('error', (error) => {
@@ -242,7 +250,13 @@ class LastingConnection implements Connection {
       ...(username === null ? {} : { username }),
       ...(password === null ? {} : { password }),
       ...(version === 5
-        ? { properties: { sessionExpiryInterval: sessionExpirySeconds, maximumPacketSize: this.#maxPacketBytes } }
+        ? {
+            properties: {
+              sessionExpiryInterval: sessionExpirySeconds,
+              maximumPacketSize: this.#maxPacketBytes,
+              receiveMaximum: RECEIVE_MAXIMUM,
+            },
+          }
         : {}),
       ...(will ? { will: willOptions(will, version) } : {}),
     };

@@ -53,8 +53,12 @@ export interface ConnectionOptions {
   /** Largest packet accepted from the broker and offered to it, bytes. Default 1 MiB. */
   readonly maxPacketBytes?: number;
   readonly backOff?: Partial<BackOffOptions>;
-  /** Called for every message before it is acknowledged; must not throw and must be quick. */
-  readonly onMessage?: (topic: string, payload: Uint8Array, packet: IncomingPacket) => void;
+  /**
+   * Called for every message before it is acknowledged; must not throw and must be quick. A message of QoS 1 is
+   * acknowledged when the promise resolves, if there is one, and never before those that came ahead of it; where the line
+   * breaks first the broker sends it again. Later messages do not wait for it.
+   */
+  readonly onMessage?: (topic: string, payload: Uint8Array, packet: IncomingPacket) => Promise<void> | void;
   readonly onState?: (event: ConnectionEvent) => void;
   /** In [0, 1); default Math.random. */
   readonly random?: () => number;

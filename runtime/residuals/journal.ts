@@ -1,7 +1,8 @@
 /**
  * The gateway's memory on disk: the journal of the open segment, the checkpoint it starts from, and the spool of closed
- * segments. A boundary writes the closed segment, then the checkpoint, then opens the next journal file; the checkpoint's
- * replacement decides. A segment may be sent only after it, so that no number ever stands for two contents.
+ * segments. A boundary writes the closed segment, then the next journal file with the readings of ticks still open, then
+ * the checkpoint; the checkpoint's replacement decides. A segment may be sent only after it, so that no number ever stands
+ * for two contents.
  *
  * A disk that fails (full, read-only, worn) never stops the forecasts: segments are held in memory, a few of them, and the
  * whole boundary is tried again. A file that failed to sync is never trusted again.
@@ -13,7 +14,7 @@ import type { LateChange, OpenReadings } from '../ingest/align.ts';
 import type { Serving } from '../serving.ts';
 import { type Checkpoint, encodeCheckpoint } from './checkpoint.ts';
 import type { Spool } from './spool.ts';
-import { Wal } from './wal.ts';
+import { startWal, Wal } from './wal.ts';
 
 /** What a journal is made of. */
 export interface JournalOptions {
@@ -31,6 +32,15 @@ export interface JournalOptions {
   readonly keepTicks: number;
   /** Signals and inputs of the site. */
   readonly channelCount: number;
+  /** The readings of ticks not closed yet. */
+  readonly openReadings: () => OpenReadings;
+}
+
+/** A journal file whose ticks are in a segment. */
+export interface KeptJournal {
+  readonly number: number;
+  readonly ticks: number;
+  readonly bytes: number;
 }
 
 /** Where a journal goes on. */
@@ -51,6 +61,10 @@ export interface JournalCounts {
 /** A segment closes by size well before the most that one may hold. */
 const SEGMENT_BYTES = 96 * 1024;
 const MOST_CORRECTIONS = 8192;
+/** A flood of readings closes the segment early, so that a restart need not read too much … */
+const JOURNAL_BYTES = 8 * 1024 * 1024;
+/** … and older files go once they hold more than this. */
+const KEPT_BYTES = 64 * 1024 * 1024;
 /** A self-contained start costs as much as a few segments: one a week of hourly segments … */
 const KEYED_EVERY = 168;
 /** … and one a day while nobody takes them, since then the oldest may have to go. */
@@ -78,7 +92,7 @@ export class Journal {
   readonly #streamName: string;
   readonly #counts = { closed: 0, shedSegments: 0, shedBytes: 0, lost: 0 };
   /** Journal files that still hold wanted ticks, oldest first. */
-  readonly #kept: { number: number; ticks: number }[] = [];
+  readonly #kept: KeptJournal[] = [];
   #unsaved: { number: number; bytes: Uint8Array }[] = [];
   #number: number;
   #sinceKeyed: number;
@@ -95,7 +109,7 @@ export class Journal {
     this.#number = position.number;
     this.#sinceKeyed = position.sinceKeyed;
     options.disk.makeFolder(journalFolder(options.folder));
-    sweepParts(options.disk, options.folder);
+    for (const folder of [options.folder, journalFolder(options.folder)]) sweepParts(options.disk, folder);
   }
 
   get counts(): JournalCounts {
@@ -122,11 +136,15 @@ export class Journal {
     if (writer === null) return false;
     const { ticks, bytesSoFar, isFull } = writer;
     if (ticks >= this.#options.segmentTicks || bytesSoFar >= SEGMENT_BYTES || isFull) return true;
-    return this.#corrections >= MOST_CORRECTIONS;
+    return this.#corrections >= MOST_CORRECTIONS || (this.#wal?.bytes ?? 0) >= JOURNAL_BYTES;
   }
 
-  /** Goes on with the segment a checkpoint started; the caller replays its journal by `coded` and `changed`. */
-  resume(startState: Uint8Array, keepBytes: number, kept: readonly { number: number; ticks: number }[]): void {
+  /**
+   * Goes on with the segment a checkpoint started; the caller replays its journal by `coded` and `changed`.
+   *
+   * keepBytes  of the journal file, as far as it checks; 0: it is gone
+   */
+  resume(startState: Uint8Array, keepBytes: number, kept: readonly KeptJournal[]): void {
     this.#startState = startState;
     this.#kept.push(...kept);
     this.#guard(() => this.#openWal(keepBytes));
@@ -139,7 +157,12 @@ export class Journal {
     this.#persist(serving);
   }
 
-  /** Writes the tick down before the filter sees it. */
+  /** Writes a reading down that was placed. */
+  reading(channel: number, timeMs: number, value: number): void {
+    this.#guard(() => this.#wal?.reading(channel, timeMs, value));
+  }
+
+  /** Writes the tick down. */
   tick(tick: number, values: Float64Array): void {
     this.#guard(() => this.#wal?.tick(tick, values));
   }
@@ -174,13 +197,20 @@ export class Journal {
     this.#persist(after);
   }
 
-  /** Makes the journal durable, off the main thread. */
+  /** Makes durable what was written down so far, off the main thread. Never rejects: see `fault`. */
   async syncSoon(): Promise<void> {
+    const wal = this.#wal;
     try {
-      await this.#wal?.syncSoon();
+      await wal?.syncSoon();
     } catch (error) {
-      this.#fail(error);
+      // A file that was left meanwhile has its ticks in a segment and its open readings in the next file.
+      if (wal === this.#wal) this.#fail(error);
     }
+  }
+
+  /** Hands what was written down to the system; cheap, and survives the process though not the power. */
+  flush(): void {
+    this.#guard(() => this.#wal?.flush());
   }
 
   /** Whether anything waits for a sync. */
@@ -188,14 +218,15 @@ export class Journal {
     return this.#wal?.isDirty ?? false;
   }
 
-  /** Clean stop: the open ticks' readings go behind the last tick. */
-  stop(open: OpenReadings): void {
-    this.#guard(() => {
-      this.#wal?.open(open);
-      this.#wal?.sync();
-      this.#wal?.close();
-      this.#wal = null;
-    });
+  /** Whether all that was written down is on disk; true as well where the disk takes nothing, see `fault`. */
+  get isDurable(): boolean {
+    return this.#wal?.isDurable ?? true;
+  }
+
+  /** Clean stop. */
+  stop(): void {
+    this.#guard(() => this.#wal?.sync());
+    this.#closeWal();
   }
 
   #openWriter(serving: Serving, firstTick: number): SegmentWriter {
@@ -221,7 +252,7 @@ export class Journal {
     this.#writer = null;
     this.#corrections = 0;
     if (writer === null) return false;
-    this.#kept.push({ number: this.#number, ticks: writer.ticks });
+    this.#kept.push({ number: this.#number, ticks: writer.ticks, bytes: this.#wal?.bytes ?? 0 });
     this.#counts.closed++;
     try {
       this.#unsaved.push({ number: this.#number, bytes: writer.finish(serving.savedState()) });
@@ -264,9 +295,10 @@ export class Journal {
         state: this.#startState,
         bounds: serving.savedBounds(),
       };
+      // Before the checkpoint that names it, so that open readings are in the old file or the new at every moment.
+      this.#openWal(0);
       replaceOn(disk, checkpointPath(folder), encodeCheckpoint(checkpoint));
       this.#unsaved = [];
-      this.#openWal(0);
       this.#prune();
       this.#shed();
     });
@@ -282,18 +314,23 @@ export class Journal {
   }
 
   #openWal(keepBytes: number): void {
-    const { disk, folder, stream, channelCount } = this.#options;
+    const { disk, folder, stream, channelCount, openReadings } = this.#options;
     const head = { channelCount, stream, number: this.#number };
-    this.#wal = new Wal(disk, journalPath(folder, this.#number), head, keepBytes);
-    disk.syncFolder(journalFolder(folder));
+    const path = journalPath(folder, this.#number);
+    this.#wal = new Wal(disk, path, keepBytes > 0 ? keepBytes : startWal(disk, path, head, openReadings()));
   }
 
   /** Removes journal files whose ticks are in segments and no longer wanted for warming. */
   #prune(): void {
     const { disk, folder, keepTicks } = this.#options;
     let ticks = 0;
+    let bytes = 0;
     let from = this.#kept.length;
-    while (from > 0 && ticks < keepTicks) ticks += this.#kept[--from]!.ticks;
+    while (from > 0 && ticks < keepTicks && bytes < KEPT_BYTES) {
+      const { ticks: more, bytes: larger } = this.#kept[--from]!;
+      ticks += more;
+      bytes += larger;
+    }
     for (const { number } of this.#kept.splice(0, from)) disk.remove(journalPath(folder, number));
   }
 

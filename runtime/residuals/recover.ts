@@ -4,7 +4,7 @@ import { join } from 'node:path';
 import { type Disk, replaceOn } from '../disk.ts';
 import { RuntimeError } from '../errors.ts';
 import { type Checkpoint, decodeCheckpoint } from './checkpoint.ts';
-import { checkpointPath, journalFolder, journalPath } from './journal.ts';
+import { checkpointPath, journalFolder, journalPath, type KeptJournal } from './journal.ts';
 import { readWal, type WalRecord } from './wal.ts';
 
 /** Who writes into a data folder. */
@@ -23,9 +23,9 @@ export interface Recovered {
   readonly validBytes: number;
   /** Bytes cut from its end. */
   readonly tornBytes: number;
-  readonly kept: readonly { readonly number: number; readonly ticks: number }[];
-  /** Ticks of the kept files, oldest first. */
-  readonly earlier: readonly WalRecord[];
+  readonly kept: readonly KeptJournal[];
+  /** What the kept files say, oldest first, read as it is asked for. */
+  readonly earlier: Iterable<WalRecord>;
 }
 
 /**
@@ -68,8 +68,7 @@ export function recover(disk: Disk, folder: string, stream: Uint8Array): Recover
   if (bytes === null) return null;
   const checkpoint = decodeCheckpoint(bytes);
   if (checkpoint === null || Buffer.compare(checkpoint.stream, stream) !== 0) return 'damaged';
-  const kept: { number: number; ticks: number }[] = [];
-  const earlier: WalRecord[] = [];
+  const kept: KeptJournal[] = [];
   for (const name of disk.list(journalFolder(folder))) {
     const number = Number(/^(\d{10})\.swj$/.exec(name)?.[1] ?? Number.NaN);
     if (Number.isNaN(number) || number === checkpoint.number) continue;
@@ -78,14 +77,24 @@ export function recover(disk: Disk, folder: string, stream: Uint8Array): Recover
       disk.remove(join(journalFolder(folder), name));
       continue;
     }
-    const ticks = content.records.filter((record) => record.kind === 'tick');
-    kept.push({ number, ticks: ticks.length });
-    earlier.push(...ticks);
+    const ticks = content.records.filter((record) => record.kind === 'tick').length;
+    kept.push({ number, ticks, bytes: content.validBytes });
   }
   const content = readOwn(disk, folder, checkpoint.number, stream);
   const size = disk.size(journalPath(folder, checkpoint.number));
   const validBytes = content?.validBytes ?? 0;
+  const earlier = recordsOf(disk, folder, stream, kept);
   return { checkpoint, records: content?.records ?? [], validBytes, tornBytes: size - validBytes, kept, earlier };
+}
+
+/** One file in memory at a time. */
+function* recordsOf(
+  disk: Disk,
+  folder: string,
+  stream: Uint8Array,
+  kept: readonly KeptJournal[],
+): Generator<WalRecord> {
+  for (const { number } of kept) yield* readOwn(disk, folder, number, stream)?.records ?? [];
 }
 
 function readOwn(disk: Disk, folder: string, number: number, stream: Uint8Array): ReturnType<typeof readWal> {

@@ -144,8 +144,8 @@ describe.each(brokers)('on %s', (_, missing, start) => {
     expect(Date.parse(forecast.valid_until)).toBe((FIRST_TICK + 29 + 5) * 60_000 + 30_000);
     const all = parseForecastsMessage(there.latest.get(topics.forecastAll)!);
     expect(all.signals).toEqual(['level', 'flow']);
-    const state = parseStateMessage(there.latest.get(topics.state)!);
-    expect(state.origin).toBe(forecast.origin);
+    const stateOf = () => parseStateMessage(there.latest.get(topics.state)!);
+    await until('state of the last tick', () => stateOf().origin === forecast.origin);
     await until('health of the change', () => healthOf(there).last_change?.outcome === 'changed', 5000);
     await until('running', () => healthOf(there).status === 'running', 5000);
     await gateway.stop();
@@ -169,14 +169,15 @@ describe.each(brokers)('on %s', (_, missing, start) => {
     await play(there, second, 25, 50);
     await second.abandon();
     const third = startGateway(there, data);
-    // The crash took the readings of the open tick with it; the plant's next ones come as ever.
+    // The crash came in the middle of a tick; the plant's next readings come as ever.
     await play(there, third, 50, 70);
     await until('same origin', () => forecastOf(there).origin === forecastOf(whole).origin);
     const comparable = ({ issued_at, ...rest }: ForecastMessage) => rest;
     expect(comparable(forecastOf(there))).toEqual(comparable(forecastOf(whole)));
-    expect(parseStateMessage(there.latest.get(topics.state)!).state).toEqual(
-      parseStateMessage(whole.latest.get(topics.state)!).state,
-    );
+    const stateOf = (one: World) => parseStateMessage(one.latest.get(topics.state)!);
+    for (const one of [there, whole])
+      await until('state of the same origin', () => stateOf(one).origin === forecastOf(there).origin);
+    expect(stateOf(there).state).toEqual(stateOf(whole).state);
     const names = (folder: string) => nodeDisk.list(`${folder}/spool`);
     expect(names(data)).toEqual(names(wholeFolder));
     for (const name of names(data))

@@ -112,7 +112,7 @@ test('counters give increments across ticks, through a reset, and none for the f
   ]);
 });
 
-test('what was open at a clean stop comes back', () => {
+test('what was open before a restart comes back', () => {
   const before = aligner(300, ['mean', 'increment']);
   place(before, 0, 100, 1);
   place(before, 1, 200, 10);
@@ -121,12 +121,54 @@ test('what was open at a clean stop comes back', () => {
   place(before, 0, 1450, 4);
   const after = aligner(300, ['mean', 'increment']);
   after.startAt(before.nextTick!);
-  after.restore(before.openReadings());
+  const open = before.openReadings();
+  after.restore(open.marks);
+  open.visit((channel, timeMs, value) => after.replay(channel, timeMs, value));
   for (const a of [before, after]) place(a, 1, 2300, 13);
   expect(close(after)).toEqual([[1, 3, Number.NaN]]);
   expect(close(before)).toEqual([[1, 3, Number.NaN]]);
   for (const a of [before, after]) place(a, 0, 3400, 0);
   expect(close(after)).toEqual([[2, Number.NaN, 3]]);
+});
+
+test('closed ticks that are replayed take late readings and know redelivered ones, as if there had been no restart', () => {
+  const said: [number, number, number][] = [
+    [0, 100, 1],
+    [1, 200, 10],
+    [0, 700, 3],
+    [0, 1100, 5],
+    [1, 1200, 12],
+    [0, 2100, 7],
+  ];
+  const before = aligner(0, ['mean', 'increment']);
+  for (const [channel, time, value] of said) place(before, channel, time, value);
+  close(before);
+  const after = aligner(0, ['mean', 'increment']);
+  for (const [channel, time, value] of said.slice(0, 5)) after.replay(channel, time, value);
+  after.replayClose(0);
+  after.replayClose(1);
+  after.replay(...said[5]!);
+  for (const a of [before, after]) {
+    expect(a.nextTick).toBe(2);
+    expect(place(a, 0, 700, 3)).toBe('duplicate');
+    expect(place(a, 1, 300, 11)).toBe('late-unchanged');
+    const changes: LateChange[] = [];
+    expect(place(a, 0, 300, 5, changes)).toBe('corrected');
+    expect(changes).toEqual([{ tick: 0, channel: 0, value: 3 }]);
+    place(a, 1, 3100, 15);
+    expect(close(a)).toEqual([[2, 7, Number.NaN]]);
+    place(a, 0, 4100, 0);
+    expect(close(a)).toEqual([[3, Number.NaN, 3]]);
+  }
+});
+
+test('after a gap in what is replayed, older ticks take nothing', () => {
+  const a = aligner();
+  a.replay(0, 100, 1);
+  a.replayClose(0);
+  a.replayClose(5);
+  expect(place(a, 0, 300, 2)).toBe('too-late');
+  expect(place(a, 0, 5100, 2)).toBe('corrected');
 });
 
 test('a flood in one tick is bounded', () => {

@@ -1,31 +1,47 @@
 import { describe, expect, test } from 'vitest';
+import type { OpenReadings } from '../../../runtime/ingest/align.ts';
 import { decodeCheckpoint, encodeCheckpoint } from '../../../runtime/residuals/checkpoint.ts';
-import { readWal, Wal, type WalRecord } from '../../../runtime/residuals/wal.ts';
+import { readWal, startWal, Wal, type WalRecord } from '../../../runtime/residuals/wal.ts';
 import { MemoryDisk } from '../../support/memory-disk.ts';
 import { seededNumbers } from '../../support/models.ts';
 
 const head = { channelCount: 3, stream: new Uint8Array([1, 2, 3, 4, 5, 6, 7, 8]), number: 42 };
-const open = {
-  newestMs: 123_456,
-  channels: [0, 2],
-  times: [1000, 2000.5],
-  values: [1.5, -2],
-  counters: [Number.NaN, 7, Number.NaN],
-  latest: [1000, Number.NaN, 2000.5],
+const marks = { newestMs: 123_456, counters: [Number.NaN, 7, Number.NaN], latest: [1000, Number.NaN, 2000.5] };
+const open: OpenReadings = {
+  marks,
+  visit(take) {
+    take(0, 1000, 1.5);
+    take(2, 2000.5, -2);
+  },
 };
+const opened: WalRecord[] = [
+  { kind: 'start', marks },
+  {
+    kind: 'readings',
+    channels: Uint16Array.of(0, 2),
+    times: Float64Array.of(1000, 2000.5),
+    values: Float64Array.of(1.5, -2),
+  },
+];
 
 function written(): { bytes: Uint8Array; ends: number[] } {
   const disk = new MemoryDisk();
-  const wal = new Wal(disk, 'j/1', head);
-  const ends = [disk.size('j/1')];
-  const note = (): void => void ends.push(disk.size('j/1'));
+  const length = startWal(disk, 'j/1', head, open);
+  const wal = new Wal(disk, 'j/1', length);
+  // Head, the frame of marks, and the readings behind it: 9 + 2 × 18 bytes.
+  const ends = [24, length - 45, length];
+  const note = (): void => {
+    wal.flush();
+    ends.push(disk.size('j/1'));
+  };
   wal.tick(100, Float64Array.of(1, Number.NaN, 0.1));
   note();
   wal.change({ tick: 99, channel: 2, value: 3.25 });
   note();
-  wal.tick(101, Float64Array.of(Number.NaN, 2, -1e-300));
+  wal.reading(1, 5000, 0.1);
+  wal.reading(0, 5000.25, -0);
   note();
-  wal.open(open);
+  wal.tick(101, Float64Array.of(Number.NaN, 2, -1e-300));
   note();
   return { bytes: disk.read('j/1')!, ends };
 }
@@ -36,11 +52,47 @@ const all = readWal(bytes)!.records;
 test('what was written comes back', () => {
   expect(readWal(bytes)!.head).toEqual(head);
   expect(all).toEqual([
+    ...opened,
     { kind: 'tick', tick: 100, values: Float64Array.of(1, Number.NaN, 0.1) },
     { kind: 'change', tick: 99, channel: 2, value: 3.25 },
+    {
+      kind: 'readings',
+      channels: Uint16Array.of(1, 0),
+      times: Float64Array.of(5000, 5000.25),
+      values: Float64Array.of(0.1, -0),
+    },
     { kind: 'tick', tick: 101, values: Float64Array.of(Number.NaN, 2, -1e-300) },
-    { kind: 'open', open },
   ]);
+});
+
+test('many readings without a pause share frames and lose none', () => {
+  const disk = new MemoryDisk();
+  const wal = new Wal(disk, 'j/1', startWal(disk, 'j/1', head, { marks, visit: () => {} }));
+  for (let i = 0; i < 20_000; i++) wal.reading(i % 3, i, 2 * i);
+  wal.flush();
+  const { records, validBytes } = readWal(disk.read('j/1')!)!;
+  const readings = records.flatMap((record) => (record.kind === 'readings' ? [...record.values] : []));
+  expect(readings).toEqual(Array.from({ length: 20_000 }, (_, i) => 2 * i));
+  expect(validBytes).toBe(disk.size('j/1'));
+  expect(validBytes).toBe(wal.bytes);
+  expect(records.length).toBeLessThan(20);
+  expect(disk.operations).toBeLessThan(20);
+});
+
+test('a sync covers what was gathered, and a file in use is let go only after it', async () => {
+  const disk = new MemoryDisk();
+  const wal = new Wal(disk, 'j/1', startWal(disk, 'j/1', head, open));
+  expect(wal.isDurable).toBe(true);
+  wal.reading(0, 1, 1);
+  expect(wal.isDurable).toBe(false);
+  const syncing = wal.syncSoon();
+  expect(wal.isDurable).toBe(false);
+  wal.reading(0, 2, 2);
+  wal.close();
+  await syncing;
+  expect(wal.isDirty).toBe(true);
+  const kept = disk.afterPowerCut('nothing').read('j/1')!;
+  expect(readWal(kept)!.records.at(-1)).toMatchObject({ kind: 'readings', values: Float64Array.of(1) });
 });
 
 describe('a torn tail', () => {
@@ -87,10 +139,11 @@ test('appending goes on behind the last whole record', () => {
   const disk = new MemoryDisk();
   disk.write('j/1', bytes.subarray(0, bytes.length - 3));
   const { validBytes } = readWal(disk.read('j/1')!)!;
-  const wal = new Wal(disk, 'j/1', head, validBytes);
+  const wal = new Wal(disk, 'j/1', validBytes);
   wal.tick(102, Float64Array.of(4, 5, 6));
+  wal.flush();
   expect(readWal(disk.read('j/1')!)!.records).toEqual([
-    ...all.slice(0, 3),
+    ...all.slice(0, 5),
     { kind: 'tick', tick: 102, values: Float64Array.of(4, 5, 6) },
   ]);
 });
