@@ -47,7 +47,14 @@ export function ringsOf(values: readonly Float64Array[], lags: readonly number[]
     out.set(y, longest);
     return out;
   });
-  const features = values.flatMap((y, c) => lags.map((lag) => y.map((now, t) => padded[c][longest + t - lag] - now)));
+  const features = values.flatMap((y, c) =>
+    lags.map((lag) => {
+      const past = padded[c].subarray(longest - lag);
+      const out = new Float64Array(y.length);
+      for (let t = 0; t < y.length; t++) out[t] = past[t] - y[t];
+      return out;
+    }),
+  );
   return { lags, padded, features };
 }
 

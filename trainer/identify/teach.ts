@@ -5,7 +5,7 @@
  */
 import type { LinearModel } from '@stillwell/runtime/filter';
 import { calibrate } from '../judge/calibrate.ts';
-import { replay } from '../judge/replay.ts';
+import { replayPaths } from '../judge/replay.ts';
 import { floatModel, openCalibration } from '../quantise/float-model.ts';
 import { floatFactors, type Learned } from '../quantise/quantise.ts';
 import type { Choice } from './choose.ts';
@@ -102,7 +102,7 @@ function passingModel(prepared: Prepared, first: LearnOutput): LinearModel {
 /** The completed history with the passing model's folded values in its first `ticks` ticks. */
 function refill({ around, calm, filled }: Prepared, passing: LinearModel, ticks: number): Filled {
   const values = filled.values.map((z) => z.slice());
-  replay(passing, calm, { fromTick: 0, toTick: ticks }, ({ at, state }) => {
+  replayPaths(passing, calm, { fromTick: 0, toTick: ticks }, ({ at, state }) => {
     for (let i = 0; i < around.signalCount; i++) if (state.started[i] === 1) values[i][at] = state.value[i];
   });
   return { ...filled, values };

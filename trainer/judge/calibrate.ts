@@ -8,7 +8,7 @@ import type { Series } from '../history/series.ts';
 import type { Calibration } from '../quantise/float-model.ts';
 import type { TickSpan } from '../span.ts';
 import { conformalRadius } from './coverage.ts';
-import { replay } from './replay.ts';
+import { replayPaths } from './replay.ts';
 import { REJECT_MOST_TICKS, REJECT_SD, robustScale } from './robust-scale.ts';
 
 /** Origins used are thinned to about this many: more does not move a 90 % quantile. */
@@ -39,7 +39,7 @@ export function calibrate(model: LinearModel, series: Series, span: TickSpan, co
     const clipped = Math.min(model.clipHigh[i], Math.max(model.clipLow[i], series.values[i][at + h]));
     return (clipped - median[i * H + Math.min(h, H) - 1]) / model.scale[i];
   };
-  replay(model, series, { fromTick: span.fromTick - 1, toTick: span.toTick - 1 }, ({ at, state, median }) => {
+  replayPaths(model, series, { fromTick: span.fromTick - 1, toTick: span.toTick - 1 }, ({ at, state, median }) => {
     for (let c = ny; c < nc; c++)
       first[c].push(Math.abs(series.values[c][at + 1] / model.scale[c] - zOf(model, c, state.value[c])));
     for (let i = 0; i < ny; i++) {

@@ -18,18 +18,22 @@ import { type Bank, settlingTicks } from '../identify/bank.ts';
 import type { TickSpan } from '../span.ts';
 
 /** What the filter has to say after a tick; the arrays are overwritten at the next. */
-export interface Moment {
+export interface PathMoment {
   /** Index into the series. */
   readonly at: number;
   readonly state: FilterState;
   /** (ny × H) in the signals' units */
   readonly median: Float64Array;
+}
+
+/** The same with bounds, (ny × H) in the signals' units. */
+export interface Moment extends PathMoment {
   readonly lower: Float64Array;
   readonly upper: Float64Array;
 }
 
 /**
- * Replays.
+ * Replays with tracked bounds.
  *
  * shapes  span of indices into the series whose ticks are visited; the filter and its bounds are warmed up on the
  *         ticks before it until the start no longer shows, as far as the series goes back
@@ -37,22 +41,52 @@ export interface Moment {
  * throws  FilterError if the model does not fit the series
  */
 export function replay(model: LinearModel, series: Series, span: TickSpan, visit: (moment: Moment) => void): void {
-  const state = createState(model);
   const bounds: Bounds = createBounds(model);
-  const cells = model.signalCount * model.horizon;
-  const median = new Float64Array(cells);
-  const lower = new Float64Array(cells);
-  const upper = new Float64Array(cells);
+  const lower = new Float64Array(model.signalCount * model.horizon);
+  const upper = new Float64Array(lower.length);
+  run(model, series, span, Number.NEGATIVE_INFINITY, (at, state, median) => {
+    trackBounds(model, bounds, state, median);
+    if (at < span.fromTick) return;
+    intervalOf(model, bounds, state, median, lower, upper);
+    visit({ at, state, median, lower, upper });
+  });
+}
+
+/**
+ * Replays for the paths alone: half the work.
+ *
+ * shapes  as `replay`
+ * units   the signals'
+ * throws  as `replay`
+ */
+export function replayPaths(
+  model: LinearModel,
+  series: Series,
+  span: TickSpan,
+  visit: (moment: PathMoment) => void,
+): void {
+  run(model, series, span, span.fromTick, (at, state, median) => {
+    if (at >= span.fromTick) visit({ at, state, median });
+  });
+}
+
+/** Every tick from the start of the warm-up; paths from tick `pathsFrom` on. */
+function run(
+  model: LinearModel,
+  series: Series,
+  span: TickSpan,
+  pathsFrom: number,
+  each: (at: number, state: FilterState, median: Float64Array) => void,
+): void {
+  const state = createState(model);
+  const median = new Float64Array(model.signalCount * model.horizon);
   const readings = new Float64Array(model.channelCount);
   const warm = Math.max(model.warmupTicks, settlingTicks(bankOf(model)));
   for (let at = Math.max(0, span.fromTick - warm); at < span.toTick; at++) {
     for (let c = 0; c < readings.length; c++) readings[c] = series.values[c][at];
     update(model, state, series.firstTick + at, readings);
-    forecastPath(model, state, median);
-    trackBounds(model, bounds, state, median);
-    if (at < span.fromTick) continue;
-    intervalOf(model, bounds, state, median, lower, upper);
-    visit({ at, state, median, lower, upper });
+    if (at >= pathsFrom) forecastPath(model, state, median);
+    each(at, state, median);
   }
 }
 

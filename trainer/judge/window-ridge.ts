@@ -4,6 +4,7 @@
  * other signals; it is there so that skill is not shown against straw men alone.
  */
 import { cholesky, solveCholesky } from '../linalg/cholesky.ts';
+import { multiply } from '../linalg/products.ts';
 
 /** y(t+h) = y(t) + Σ_k (y(t-k) - y(t)) weights[k-1, h-1]. */
 export interface WindowRidge {
@@ -99,13 +100,8 @@ function solve(moments: WindowMoments, lags: number, horizon: number, penalty: n
 
 /** Squared error over all steps, without the part that no map changes. */
 function lateError(late: WindowMoments, weights: Float64Array, lags: number, horizon: number): number {
+  const pushed = multiply(late.gram, weights, lags, lags, horizon);
   let sum = 0;
-  for (let a = 0; a < lags; a++) {
-    for (let h = 0; h < horizon; h++) {
-      let pushed = 0;
-      for (let b = 0; b < lags; b++) pushed += late.gram[a * lags + b] * weights[b * horizon + h];
-      sum += weights[a * horizon + h] * (pushed - 2 * late.cross[a * horizon + h]);
-    }
-  }
+  for (let at = 0; at < pushed.length; at++) sum += weights[at] * (pushed[at] - 2 * late.cross[at]);
   return sum;
 }

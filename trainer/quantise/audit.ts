@@ -13,7 +13,7 @@ import {
 } from '@stillwell/runtime/filter';
 import { TrainError } from '../errors.ts';
 import type { Series } from '../history/series.ts';
-import { replay } from '../judge/replay.ts';
+import { replayPaths } from '../judge/replay.ts';
 import { meanOf, Scores } from '../judge/scores.ts';
 import type { TickSpan } from '../span.ts';
 
@@ -37,7 +37,7 @@ export interface Audit {
 export function replayError(model: LinearModel, series: Series, span: TickSpan): number {
   const { signalCount: ny, horizon: H } = model;
   const scores = new Scores(ny * H);
-  replay(model, series, { fromTick: span.fromTick - 1, toTick: span.toTick - H }, ({ at, median }) => {
+  replayPaths(model, series, { fromTick: span.fromTick - 1, toTick: span.toTick - H }, ({ at, median }) => {
     for (let i = 0; i < ny; i++) {
       for (let h = 1; h <= H; h++) {
         const reading = series.values[i][at + h];
