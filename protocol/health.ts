@@ -45,11 +45,20 @@ export const healthSchema = z.strictObject({
   versions: z.record(z.string().min(1), z.string()),
 });
 
-/** A health message as it stands in JSON. */
-export type HealthMessage = z.output<typeof healthSchema>;
+/** Counts of a health message: those every gateway says, and whatever else it counts, plain or by cause. */
+export interface HealthCounters {
+  readonly readings: number;
+  readonly refused: Readonly<Record<string, number>>;
+  readonly late: number;
+  readonly ticks: number;
+  readonly segments_open: number;
+  readonly segments_waiting: number;
+  readonly segments_confirmed: number;
+  readonly [further: string]: number | Readonly<Record<string, number>>;
+}
 
-/** Counts of a health message. */
-export type HealthCounters = z.output<typeof countersSchema>;
+/** A health message as it stands in JSON. */
+export type HealthMessage = Omit<z.output<typeof healthSchema>, 'counters'> & { readonly counters: HealthCounters };
 
 /** A change of bundle: digests in hexadecimal, null for none. */
 export interface BundleChange {

@@ -80,22 +80,44 @@ export const writeHead = <K extends string>(kind: K, head: MessageHead) => ({
   advisory: ADVISORY,
 });
 
-/** JSON would write NaN and infinities as null without a word. */
-const checkFinite = (value: unknown, path: (string | number)[]): void => {
-  if (typeof value === 'number' && !Number.isFinite(value)) {
-    throw new ProtocolError('encode', `message: ${formatPath(path)}: expected a finite number, got ${value}`, {
-      details: { path: formatPath(path) },
-    });
+/**
+ * JSON would write NaN and infinities as null without a word. Messages hold thousands of numbers and are written every
+ * tick, so the path to one, innermost first, is gathered only on the way back from a bad one.
+ *
+ * returns  null when every number is finite
+ */
+const pathToBad = (value: unknown): (string | number)[] | null => {
+  if (typeof value === 'number') return Number.isFinite(value) ? null : [];
+  if (typeof value !== 'object' || value === null) return null;
+  if (Array.isArray(value)) {
+    for (let i = 0; i < value.length; i++) {
+      const path = pathToBad(value[i]);
+      if (path !== null) return [...path, i];
+    }
+    return null;
   }
-  if (typeof value !== 'object' || value === null) return;
-  if (Array.isArray(value)) for (let i = 0; i < value.length; i++) checkFinite(value[i], [...path, i]);
-  else for (const [key, inner] of Object.entries(value)) checkFinite(inner, [...path, key]);
+  for (const key of Object.keys(value)) {
+    const path = pathToBad((value as Record<string, unknown>)[key]);
+    if (path !== null) return [...path, key];
+  }
+  return null;
 };
+
+const refuseBad = (message: object): void => {
+  const path = pathToBad(message)?.reverse();
+  if (path === undefined) return;
+  const value = path.reduce<unknown>((inner, key) => (inner as Record<string | number, unknown>)[key], message);
+  throw new ProtocolError('encode', `message: ${formatPath(path)}: expected a finite number, got ${value}`, {
+    details: { path: formatPath(path) },
+  });
+};
+
+const encoder = new TextEncoder();
 
 /** A JSON message as payload bytes. */
 export const writeJson = (message: object): Uint8Array => {
-  checkFinite(message, []);
-  return new TextEncoder().encode(JSON.stringify(message));
+  refuseBad(message);
+  return encoder.encode(JSON.stringify(message));
 };
 
 const fieldsOf = (schema: z.ZodObject) => (path: readonly PropertyKey[]) =>

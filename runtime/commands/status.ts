@@ -21,7 +21,7 @@ export function statusCommand(): Command {
 }
 
 function statusText(health: HealthMessage, pid: number | null): string {
-  const counters = health.counters as Record<string, unknown>;
+  const { counters } = health;
   const count = (name: string): string => String(counters[name] ?? 0);
   const refused = Object.entries((counters.refused ?? {}) as Record<string, number>);
   const change = health.last_change;

@@ -166,7 +166,8 @@ function startGateway(
   url: string,
   extra: readonly string[],
 ): ChildProcess {
-  const command = fileURLToPath(new URL('../stillwell-gateway.js', import.meta.resolve('@stillwell/runtime')));
+  // As npm links it for whoever installs the package: its first line passes V8's flags.
+  const command = fileURLToPath(new URL('../../../node_modules/.bin/stillwell-gateway', import.meta.url));
   const { site, key, bundle } = files;
   const given = ['--site', site, '--trust', key, '--bundle', bundle, '--data', data, '--broker', url, '--log', 'warn'];
   return spawn(command, ['run', '--gateway', 'g1', ...given, ...extra], { stdio: 'inherit' });
