@@ -54,8 +54,8 @@ export interface FleetOptions {
   readonly onUnexpectedEnd: (name: string, detail: string) => void;
 }
 
-/** As on a small box: a young generation of one MiB instead of sixteen. */
-const SMALL_BOX = ['--max-semi-space-size=1'];
+/** As the gateway's own command starts it: small heap, small pool. */
+const SMALL_BOX = ['--max-semi-space-size=1', '--v8-pool-size=1', '--expose-gc'];
 const CONNECT_TIMEOUT_MS = 15_000;
 
 /** Broker, desk and gateways of one demo run. */
