@@ -128,7 +128,12 @@ describe('what people and PLCs read', () => {
     expect(parseStateMessage(stateMessage(state))).toEqual(json(stateMessage(state)));
     expect(parseForecastMessage(forecastMessage(forecast))).toEqual(json(forecastMessage(forecast)));
     expect(parseHealthMessage(healthMessage(health))).toEqual(json(healthMessage(health)));
-    const more = { ...health, status: 'lost' as const, counters: { ...counters, reconnects: 4, by_kind: { a: 1 } }, lastChange: null };
+    const more = {
+      ...health,
+      status: 'lost' as const,
+      counters: { ...counters, reconnects: 4, by_kind: { a: 1 } },
+      lastChange: null,
+    };
     expect(parseHealthMessage(healthMessage(more)).counters).toMatchObject({ reconnects: 4, by_kind: { a: 1 } });
   });
 });
