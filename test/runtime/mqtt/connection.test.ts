@@ -31,8 +31,9 @@ function watch(url: string, clientId: string, extra: Partial<ConnectionOptions> 
     protocol: 'auto',
     backOff: { firstMs: 60, capMs: 100 },
     onState: (event) => events.push(event),
-    onMessage: (topic, payload, packet) =>
-      messages.push({ topic, text: Buffer.from(payload).toString('utf8'), retain: packet.retain }),
+    onMessage: (topic, payload, packet) => {
+      messages.push({ topic, text: Buffer.from(payload).toString('utf8'), retain: packet.retain });
+    },
     ...extra,
   });
   open.push(connection);
