@@ -125,13 +125,11 @@ async function play(ticks: number) {
     if (n % 611 === 610) {
       running.engine.stop();
       running = startEngine(disk);
-      account.restart();
     } else if (n % 611 === 300) {
       // The journal is synced before the cut, as it is every second; what the disk holds is what the next start finds.
       await running.engine.journal!.syncSoon();
       disk = disk.afterPowerCut('nothing');
       running = startEngine(disk);
-      account.restart();
     }
     if (n % 200 === 199) await desk.exchange(running.engine, true);
     if (n % 1000 === 999) await desk.restart();

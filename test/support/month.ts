@@ -98,11 +98,10 @@ export class Account {
   readonly merged = new Map<string, number>();
   readonly #times = new Map<string, number>();
   #next = 0;
-  #notBefore = 0;
 
-  /** A reading arrived; late ones count as far back as the gateway remembers. */
+  /** A reading arrived; late ones count as far back as the gateway remembers, over restarts and power cuts too. */
   take(message: Message): void {
-    if (message.tick < Math.max(this.#notBefore, this.#next - 720)) return;
+    if (message.tick < this.#next - 720) return;
     const key = `${message.tick} ${message.channel}`;
     if (message.timeMs < (this.#times.get(key) ?? Number.NEGATIVE_INFINITY)) return;
     this.#times.set(key, message.timeMs);
@@ -113,10 +112,5 @@ export class Account {
   /** Ticks before `next` are closed. */
   close(next: number): void {
     this.#next = next;
-  }
-
-  /** After a restart readings of closed ticks are no longer known, so late ones for them are not taken. */
-  restart(): void {
-    this.#notBefore = this.#next;
   }
 }
