@@ -11,6 +11,7 @@ import { verdictSteps } from '../judge/gate.ts';
 import { type Hindcast, hindcast } from '../judge/hindcast.ts';
 import { hindcastJson } from '../judge/hindcast-json.ts';
 import { meanOf, skillScore } from '../judge/scores.ts';
+import { learnedSpans } from '../learned-spans.ts';
 import { several } from '../option-values.ts';
 import { createProgress } from '../progress.ts';
 import { readSite } from '../site-file.ts';
@@ -74,12 +75,12 @@ async function run(options: HindcastOptions): Promise<void> {
     bundle.channels.map((channel) => channel.lattice),
   );
   const learned = learnedSpans(bundle);
-  const fromTick = fromMs === undefined ? learned.end : Math.ceil(fromMs / series.tickMs);
+  const fromTick = fromMs === undefined ? learned.seenTo : Math.ceil(fromMs / series.tickMs);
   const span = judgedSpan(series, bundle, fromTick, fromMs !== undefined);
   refuseUnread(series, span, options.history);
   const units = bundle.channels.map((channel) => channel.unit);
   const cast = hindcast(model, series, { ...span, learn: learned.learn }, units);
-  const seenShare = Math.max(0, Math.min(1, (learned.end - span.fromTick) / (span.toTick - span.fromTick)));
+  const seenShare = Math.max(0, Math.min(1, (learned.seenTo - span.fromTick) / (span.toTick - span.fromTick)));
   const head = {
     bundle: Buffer.from(digest).toString('hex'),
     site: bundle.site,
@@ -96,28 +97,6 @@ async function run(options: HindcastOptions): Promise<void> {
 function seenText(share: number): string {
   if (share === 0) return '';
   return `Note: ${percent(share)} of the judged time is time the bundle learned or was calibrated from, which flatters it.\n`;
-}
-
-/** Where the bundle learned, and the first tick it has not seen; from its provenance. */
-function learnedSpans(bundle: Bundle): { readonly learn: TickSpan | null; readonly end: number } {
-  const lastTick = Math.round(bundle.provenance.lastMs / bundle.tickMs) + 1;
-  let options: { learn?: unknown; calibrate?: unknown; useAll?: unknown } = {};
-  try {
-    options = JSON.parse(bundle.provenance.options) as typeof options;
-  } catch {
-    return { learn: null, end: lastTick };
-  }
-  const learn = spanOf(options.learn);
-  const calibrate = spanOf(options.calibrate);
-  return { learn, end: Math.max(lastTick, calibrate?.toTick ?? lastTick) };
-}
-
-function spanOf(value: unknown): TickSpan | null {
-  if (!Array.isArray(value) || value.length !== 2) return null;
-  const [fromTick, toTick] = value as unknown[];
-  return Number.isSafeInteger(fromTick) && Number.isSafeInteger(toTick)
-    ? { fromTick: fromTick as number, toTick: toTick as number }
-    : null;
 }
 
 function judgedSpan(series: Series, bundle: Bundle, asked: number, isAsked: boolean): TickSpan {

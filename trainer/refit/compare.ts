@@ -6,6 +6,7 @@ import type { OpenDocument } from '../bundle-file.ts';
 import type { Series } from '../history/series.ts';
 import { type Hindcast, hindcast } from '../judge/hindcast.ts';
 import { meanOf } from '../judge/scores.ts';
+import { learnedSpans } from '../learned-spans.ts';
 import type { FitResult } from '../pipeline.ts';
 
 /** Ratios of mean squared error, new over previous; below 1 the new one is better. */
@@ -49,7 +50,7 @@ export function compare(result: FitResult, previous: OpenDocument, series: Serie
   }));
   const known = signals.map((one) => one.ratio).filter((ratio) => Number.isFinite(ratio) && ratio > 0);
   const ratio = Math.exp(meanOf(Float64Array.from(known, Math.log)));
-  const seenByPrevious = shareSeen(result, previous, series.tickMs);
+  const seenByPrevious = shareSeen(result, previous);
   const isRecommended = ratio < 1 - EQUAL_BAND && known.every((one) => one < MUCH_WORSE) && result.verdicts.hasSkill;
   const facts = { ratio, signals, seenByPrevious, isRecommended };
   return {
@@ -73,20 +74,10 @@ function meanCoverage(cast: Hindcast, signal: number): number {
   return meanOf(cast.coverage.subarray(signal * cast.horizon, (signal + 1) * cast.horizon));
 }
 
-function shareSeen(result: FitResult, previous: OpenDocument, tickMs: number): number {
+function shareSeen(result: FitResult, previous: OpenDocument): number {
   const { fromTick, toTick } = result.judged;
-  const seenTo = Math.max(Math.round(previous.bundle.provenance.lastMs / tickMs) + 1, calibratedTo(previous));
+  const { seenTo } = learnedSpans(previous.bundle);
   return Math.max(0, Math.min(1, (seenTo - fromTick) / (toTick - fromTick)));
-}
-
-/** First tick after what the bounds were set on, as the options in the provenance say; 0 where they do not. */
-function calibratedTo({ bundle }: OpenDocument): number {
-  try {
-    const { calibrate } = JSON.parse(bundle.provenance.options) as { calibrate?: unknown };
-    return Array.isArray(calibrate) && Number.isSafeInteger(calibrate[1]) ? (calibrate[1] as number) : 0;
-  } catch {
-    return 0;
-  }
 }
 
 function sentenceOf(
