@@ -1,4 +1,6 @@
 import { createHash } from 'node:crypto';
+import { readFileSync } from 'node:fs';
+import { ARITHMETIC } from '@stillwell/protocol';
 import { type LinearModel, runProbe } from '@stillwell/runtime/filter';
 import { expect, test } from 'vitest';
 import { syntheticModel } from '../../support/models.ts';
@@ -37,4 +39,14 @@ test('a weight, a pole or a radius changed by one part in 2^40 shows', () => {
   for (const name of ['bottleneck', 'readout', 'horizonBasis', 'decays', 'resonatorIm', 'radius'] as const) {
     expect(digest(nudged(name), 7, 200)).not.toBe(whole);
   }
+});
+
+test('the frozen bytes of arithmetic 1 come out again, on any machine', () => {
+  const frozen = JSON.parse(readFileSync(new URL('../../vectors/probe-1.json', import.meta.url), 'utf8')) as {
+    arithmetic: number;
+    runs: readonly { seed: number; ticks: number; sha256: string }[];
+  };
+  expect(frozen.arithmetic).toBe(ARITHMETIC);
+  expect(frozen.runs.length).toBeGreaterThan(2);
+  for (const { seed, ticks, sha256 } of frozen.runs) expect(digest(model, seed, ticks)).toBe(sha256);
 });
