@@ -39,9 +39,21 @@ export function cadenceOf(channel: ChannelReadings, order: Uint32Array | null): 
     previous = time;
   }
   const found = intervals.subarray(0, count);
-  const intervalMs = quantiles(found, [0.5])[0] as number;
+  const intervalMs = usualInterval(found);
   for (let n = 0; n < count; n++) found[n] = Math.abs((found[n] as number) - intervalMs);
   return { intervalMs, jitterMs: quantiles(found, [0.5])[0] as number };
+}
+
+/**
+ * The median, unless many readings are missing: then the median is a multiple of the true interval, which still stands at
+ * the lower quartile in a quarter of the cases or more.
+ */
+function usualInterval(intervals: Float64Array): number {
+  const [quarter, median] = quantiles(intervals, [0.25, 0.5]) as [number, number];
+  const multiple = Math.round(median / quarter);
+  if (!(multiple >= 2 && Math.abs(median / quarter - multiple) < (WAVER - 1) * multiple)) return median;
+  const alike = intervals.filter((interval) => interval < quarter * WAVER && interval * WAVER > quarter).length;
+  return alike >= intervals.length / 4 ? quarter : median;
 }
 
 /** Tick for signals read at these usual intervals: the smallest step no signal is slower than. */
