@@ -22,9 +22,18 @@ export function shortNumber(value: number | null | undefined, digits = 4): strin
   return String(Number(value.toPrecision(digits)));
 }
 
-/** A moment in UTC to the second. */
+/** Furthest moment from 1970 that a date can hold (ECMA-262, time values). */
+const MOST_MS = 8.64e15;
+
+/** A moment in UTC to the second; one outside the calendar, as a damaged clock may give, is said to be so. */
 export function momentText(ms: number | null): string {
-  return ms === null ? '-' : `${new Date(ms).toISOString().slice(0, 19)}Z`;
+  if (ms === null) return '-';
+  return Math.abs(ms) <= MOST_MS ? `${new Date(ms).toISOString().slice(0, 19)}Z` : 'outside the calendar';
+}
+
+/** Text of others on one line of a terminal: control characters, which could redraw it, become a question mark. */
+export function printable(text: string): string {
+  return text.replace(/\p{Cc}/gu, '?');
 }
 
 /** A span of time in the largest unit that keeps it readable. */

@@ -17,6 +17,8 @@ export interface ChainEvent {
   readonly number: number;
   /** Readings recovered, where decoded. */
   readonly readings: number | null;
+  /** Bytes of the segment. */
+  readonly size: number;
   readonly reason: string | null;
 }
 
@@ -54,8 +56,11 @@ export class Chain {
     return events;
   }
 
-  /** Tries everything that waits: at start, and when bundles have come. */
-  async followAll(bundles: readonly string[] | null = null): Promise<ChainEvent[]> {
+  /**
+   * Tries everything that waits: at start, and when bundles have come. What the store throws at one segment goes into
+   * `failures`, and the others are still tried; without such a list it is thrown on.
+   */
+  async followAll(bundles: readonly string[] | null = null, failures: Error[] | null = null): Promise<ChainEvent[]> {
     let query = this.#store.db
       .selectFrom('segments')
       .select(['site', 'gateway', 'stream', 'number'])
@@ -63,7 +68,14 @@ export class Chain {
     if (bundles !== null) query = query.where('bundle', 'in', [...bundles]);
     const places = await query.orderBy('site').orderBy('gateway').orderBy('stream').orderBy('number').execute();
     const events: ChainEvent[] = [];
-    for (const place of places) events.push(...(await this.follow(place)));
+    for (const place of places) {
+      try {
+        events.push(...(await this.follow(place)));
+      } catch (error) {
+        if (failures === null) throw error;
+        failures.push(error as Error);
+      }
+    }
     return events;
   }
 
@@ -71,7 +83,20 @@ export class Chain {
   find(place: StreamPlace) {
     return this.#store.db
       .selectFrom('segments')
-      .select(['id', 'site', 'gateway', 'stream', 'number', 'bundle', 'keyed', 'state', 'reason', 'bytes', 'end_state'])
+      .select([
+        'id',
+        'site',
+        'gateway',
+        'stream',
+        'number',
+        'bundle',
+        'keyed',
+        'state',
+        'reason',
+        'bytes',
+        'size',
+        'end_state',
+      ])
       .where('site', '=', place.site)
       .where('gateway', '=', place.gateway)
       .where('stream', '=', place.stream)
@@ -179,5 +204,5 @@ function packLattice(lattice: Float64Array): Uint8Array {
 }
 
 function said(row: NonNullable<Row>): Omit<ChainEvent, 'kind' | 'readings' | 'reason'> {
-  return { site: row.site, gateway: row.gateway, stream: row.stream, number: row.number };
+  return { site: row.site, gateway: row.gateway, stream: row.stream, number: row.number, size: row.size };
 }

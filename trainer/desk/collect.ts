@@ -35,6 +35,10 @@ export interface CollectorOptions {
 const BATCH = 64;
 /** Bytes waiting in memory at most; beyond, arrivals are left to the gateways. */
 const MAX_QUEUE_BYTES = 64 * 1024 * 1024;
+/** What an arrival takes in memory beside its bytes, about: a flood of empty messages must meet the limit too. */
+const ARRIVAL_BYTES = 512;
+/** After a failed decoding, the store is given so long before all that waits is tried again. */
+const RETRY_MS = 60_000;
 
 /** Takes messages in one after the other, whatever their rate. */
 export class Collector {
@@ -44,6 +48,8 @@ export class Collector {
   #queue: Arrival[] = [];
   #queueBytes = 0;
   #dropped = 0;
+  /** When all that waits is to be tried again; null while nothing has failed. */
+  #retryAtMs: number | null = null;
   /** Receipts that went out and are not marked so in the store yet. */
   readonly #receipted: SegmentName[] = [];
   /** The pump at work, or the last one done; never rejects. */
@@ -65,25 +71,29 @@ export class Collector {
   offer(topic: string, payload: Uint8Array): boolean {
     const parsed = parseTopic(this.#options.root, topic);
     if (parsed?.kind !== 'segments') return false;
-    if (this.#queueBytes + payload.length > MAX_QUEUE_BYTES) {
+    const cost = payload.length + ARRIVAL_BYTES;
+    if (this.#queueBytes + cost > MAX_QUEUE_BYTES) {
       this.#dropped++;
       return true;
     }
     this.#queue.push({ site: parsed.site, bytes: Uint8Array.from(payload), atMs: this.#now() });
-    this.#queueBytes += payload.length;
+    this.#queueBytes += cost;
     this.#start();
     return true;
   }
 
-  /** Looks through the bundle folder and decodes what waited for what it finds; at start also all else that waits. */
+  /**
+   * Looks through the bundle folder and decodes what waited for what it finds; at start, and a while after a failure, also
+   * all else that waits.
+   */
   refresh(isStart = false): Promise<void> {
     const look = async (): Promise<void> => {
       await this.#markReceipted();
       const { added, refused } = await this.#options.shelf.refresh();
       for (const digest of added) this.#tell({ event: 'bundle', digest });
       for (const one of refused) this.#tell({ event: 'bundle-refused', ...one });
-      if (isStart) this.#tellChain(await this.#chain.followAll());
-      else if (added.length > 0) this.#tellChain(await this.#chain.followAll(added));
+      if (isStart || (this.#retryAtMs !== null && this.#now() >= this.#retryAtMs)) await this.#decodeWaiting(null);
+      else if (added.length > 0) await this.#decodeWaiting(added);
     };
     this.#pump = this.#pump.then(look).catch((error: Error) => this.#failed(error));
     return this.#pump;
@@ -118,7 +128,7 @@ export class Collector {
 
   async #takeBatch(): Promise<void> {
     const batch = this.#queue.splice(0, BATCH);
-    for (const { bytes } of batch) this.#queueBytes -= bytes.length;
+    for (const { bytes } of batch) this.#queueBytes -= bytes.length + ARRIVAL_BYTES;
     let outcomes: Outcome[] = [];
     try {
       outcomes = await takeIn(this.#options.store, batch);
@@ -190,21 +200,31 @@ export class Collector {
   }
 
   async #decode(outcomes: readonly Outcome[]): Promise<void> {
-    try {
-      for (const outcome of outcomes) {
-        if (outcome.kind === 'stored') this.#tellChain(await this.#chain.follow(outcome.name));
+    for (const outcome of outcomes) {
+      if (outcome.kind !== 'stored') continue;
+      try {
+        this.#tellChain(await this.#chain.follow(outcome.name));
+      } catch (error) {
+        this.#failed(error as Error);
       }
-    } catch (error) {
-      this.#failed(error as Error);
     }
+  }
+
+  /** One segment that fails must not keep the others of the fleet waiting. */
+  async #decodeWaiting(bundles: readonly string[] | null): Promise<void> {
+    if (bundles === null) this.#retryAtMs = null;
+    const failures: Error[] = [];
+    this.#tellChain(await this.#chain.followAll(bundles, failures));
+    if (failures.length > 0) this.#failed(failures[0]!);
   }
 
   #tellChain(events: readonly ChainEvent[]): void {
     for (const event of events) this.#tell({ event: 'chain', ...event });
   }
 
-  /** What is committed stays so; the next start tries again. */
+  /** What is committed stays so; it is tried again after a while, and at the next start. */
   #failed(error: Error): void {
+    this.#retryAtMs ??= this.#now() + RETRY_MS;
     this.#tell({ event: 'failed', message: error.message });
   }
 

@@ -29,7 +29,7 @@ export function eventLine(event: RunEvent): string | null {
     case 'not-kept':
       return `${event.dropped} segments not kept, no receipt sent: ${event.message}`;
     case 'failed':
-      return `decoding stopped: ${event.message}; tried again at the next start`;
+      return `decoding failed: ${event.message}; what is kept stays kept, and is tried again within minutes`;
     case 'connection':
       return `broker: ${event.state}, ${event.detail}`;
   }
@@ -42,12 +42,16 @@ export class DeskCounts {
   #conflicts = 0;
   #refused = 0;
   #readings = 0;
+  /** Of the segments these readings came from; others may wait, or have come in an earlier run. */
   #bytes = 0;
   #lastMs: number | null = null;
   readonly #sites = new Set<string>();
 
   count(event: RunEvent, nowMs: number): void {
-    if (event.event === 'chain' && event.readings !== null) this.#readings += event.readings;
+    if (event.event === 'chain' && event.kind === 'decoded') {
+      this.#readings += event.readings ?? 0;
+      this.#bytes += event.size;
+    }
     if (event.event !== 'segment') return;
     if (event.kind === 'refused') {
       this.#refused++;
@@ -55,10 +59,8 @@ export class DeskCounts {
     }
     this.#lastMs = nowMs;
     this.#sites.add(event.name.site);
-    if (event.kind === 'stored') {
-      this.#stored++;
-      this.#bytes += event.size;
-    } else if (event.kind === 'copy') this.#copies++;
+    if (event.kind === 'stored') this.#stored++;
+    else if (event.kind === 'copy') this.#copies++;
     else this.#conflicts++;
   }
 

@@ -38,17 +38,30 @@ export class Shelf {
     this.#now = now;
   }
 
-  /** Reads new and changed files of the folder into the store; a file that is no bundle is named once and passed over. */
+  /**
+   * Reads new and changed files of the folder into the store; a file that is no bundle is named once and passed over.
+   *
+   * throws  what the store throws (disk full, busy): the files are read again at the next look
+   */
   async refresh(): Promise<ShelfNews> {
     const added: string[] = [];
     const refused: { file: string; message: string }[] = [];
     for (const file of this.#newFiles()) {
+      let document: Uint8Array;
+      let shelved: ShelvedBundle;
       try {
-        const { bytes } = documentOf(readFileSync(file), file);
-        const shelved = open(bytes);
-        if (await this.#keep(shelved, bytes)) added.push(shelved.digest);
+        document = documentOf(readFileSync(file), file).bytes;
+        shelved = open(document);
       } catch (error) {
         refused.push({ file, message: (error as Error).message });
+        continue;
+      }
+      try {
+        if (await this.#keep(shelved, document)) added.push(shelved.digest);
+      } catch (error) {
+        // The store's fault, not the file's: every file is looked at again, since those before it are kept already.
+        this.#seen.clear();
+        throw error;
       }
     }
     return { added, refused };

@@ -9,8 +9,9 @@ import type { Store } from './store/open.ts';
 export interface ResidualHealth {
   readonly signal: string;
   readonly count: number;
-  readonly bias: number;
-  readonly sdRatio: number;
+  /** null where the bundle has no residual of the signal yet. */
+  readonly bias: number | null;
+  readonly sdRatio: number | null;
   /** The same over the last seven days of ticks; null where nothing was read in them. */
   readonly recentBias: number | null;
   readonly recentSdRatio: number | null;
@@ -201,8 +202,8 @@ function healthOf(signal: string, all: Sums | undefined, late: Sums | undefined)
   return {
     signal,
     count: all?.count ?? 0,
-    bias: whole?.bias ?? 0,
-    sdRatio: whole?.sd ?? 0,
+    bias: whole?.bias ?? null,
+    sdRatio: whole?.sd ?? null,
     recentBias: recent?.bias ?? null,
     recentSdRatio: recent?.sd ?? null,
   };

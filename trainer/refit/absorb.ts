@@ -11,6 +11,7 @@ import { findLattices, type Lattice } from '../history/resolution.ts';
 import type { Series } from '../history/series.ts';
 import { type Survey, surveyHistory } from '../history/survey.ts';
 import { digestOf, layOnTicks } from '../history/ticks.ts';
+import { momentText } from '../text-table.ts';
 
 /** One series, and where the archive's part of it begins. */
 export interface Absorbed {
@@ -76,8 +77,8 @@ function overlay(archive: Archive, before: Series | null, channels: readonly Sig
     throw new TrainError(
       'archive',
       `archive of ${site.site}: expected readings most of the time, got ${covered} ticks in the ${count} from ` +
-        `${new Date(firstTick * site.tickMs).toISOString()} to ${new Date(end * site.tickMs).toISOString()}; a gateway ` +
-        'may have run with a wrong clock: give --from',
+        `${momentText(firstTick * site.tickMs)} to ${momentText(end * site.tickMs)}; a gateway may have run with a wrong ` +
+        'clock: give --from or --until',
     );
   }
   const values = channels.map(({ name }, c) => {

@@ -5,9 +5,11 @@ import { latticeValue } from '@stillwell/protocol';
 import { expect, test } from 'vitest';
 import { type Archive, readSite } from '../../../trainer/desk/archive.ts';
 import { Chain } from '../../../trainer/desk/chain.ts';
+import { DeskCounts } from '../../../trainer/desk/event-text.ts';
 import { takeIn } from '../../../trainer/desk/intake.ts';
 import { Shelf } from '../../../trainer/desk/shelf.ts';
 import { readStatus } from '../../../trainer/desk/status.ts';
+import { statusText } from '../../../trainer/desk/status-text.ts';
 import { openStore, type Store } from '../../../trainer/desk/store/open.ts';
 import { testFolder } from '../../support/folder.ts';
 import { syntheticReadings } from '../../support/models.ts';
@@ -192,4 +194,27 @@ test('a damaged segment, and one of another site, are refused and counted', asyn
   const [status] = await readStatus(desk.store);
   expect(status).toMatchObject({ segments: 0, refused: 3 });
   await desk.store.close();
+});
+
+test('a segment of a clock far outside the calendar is decoded and told of, and stops no status', async () => {
+  const desk = await openDesk(testFolder());
+  const maker = new SegmentMaker(SITE, 'gw-9', first.document, first.model);
+  maker.tick(2 ** 52, Float64Array.of(Number.NaN, 13));
+  maker.close();
+  await deliver(desk, [maker.made[0]!.bytes]);
+  const statuses = await readStatus(desk.store);
+  // No residual yet is not the same as a residual of 0.
+  expect(statuses[0]!.residuals[0]).toMatchObject({ count: 0, bias: null, sdRatio: null });
+  expect(statusText(statuses)).toContain('outside the calendar');
+  await desk.store.close();
+});
+
+test('bits per reading count the segments that the readings came from, not those that wait', async () => {
+  const counts = new DeskCounts();
+  const place = { site: SITE, gateway: 'gw-1', stream: '00', number: 1 };
+  const name = { ...place, hash: new Uint8Array(32) };
+  counts.count({ event: 'segment', kind: 'stored', name, ticks: 60, size: 5000 }, 0);
+  counts.count({ event: 'chain', kind: 'waiting', ...place, readings: null, size: 5000, reason: 'bundle' }, 0);
+  counts.count({ event: 'chain', kind: 'decoded', ...place, readings: 100, size: 50, reason: null }, 0);
+  expect(counts.line()).toContain('100 readings, 4.00 bits/reading');
 });

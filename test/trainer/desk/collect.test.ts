@@ -4,6 +4,7 @@ import { writeFileSync } from 'node:fs';
 import { join } from 'node:path';
 import { parseReceiptMessage, segmentHash, topicsOf } from '@stillwell/protocol';
 import { openConnection } from '@stillwell/runtime/mqtt';
+import { sql } from 'kysely';
 import { describe, expect, onTestFinished, test } from 'vitest';
 import { readArchive } from '../../../trainer/desk/archive.ts';
 import { Collector, type DeskEvent } from '../../../trainer/desk/collect.ts';
@@ -203,4 +204,63 @@ test('the broker being down is one sentence that says what to check, and the fol
     /expected a folder of sealed bundles/,
   );
   await (await openStore(data)).close();
+});
+
+test('a flood of empty messages meets the limit of memory, and is told', async () => {
+  const desk = await deskInside(async () => undefined);
+  await desk.store.db.schema.dropTable('refusals').execute();
+  const offered = 200_000;
+  for (let i = 0; i < offered; i++) desk.collector.offer(TOPICS.segments, new Uint8Array(0));
+  expect(desk.collector.waiting).toBeLessThan(140_000);
+  await desk.collector.settle();
+  const dropped = desk.events.flatMap((event) => (event.event === 'not-kept' ? [event.dropped] : []));
+  expect(dropped.reduce((sum, count) => sum + count, 0)).toBe(offered);
+  await desk.store.close();
+});
+
+test('one segment that cannot be decoded holds up no other stream, and is tried again after a while', async () => {
+  const store = await openStore(testFolder());
+  const events: DeskEvent[] = [];
+  let nowMs = 1_800_000_000_000;
+  const collector = new Collector({
+    store,
+    shelf: new Shelf(store, shelfFolder([bundle.document])),
+    root: 'stillwell',
+    publish: async () => undefined,
+    onEvent: (event) => events.push(event),
+    now: () => nowMs,
+  });
+  await collector.refresh(true);
+  // A span of this tick cannot be stored: stands in for a disk that fails at one segment.
+  await sql`CREATE TRIGGER jam BEFORE INSERT ON spans WHEN NEW.first_tick = 7 BEGIN SELECT RAISE(ABORT, 'jammed'); END`.execute(
+    store.db,
+  );
+  const jammed = new SegmentMaker(SITE, 'gw-1', bundle.document, bundle.model, 11);
+  jammed.tick(7, Float64Array.of(10, 13));
+  jammed.close();
+  for (const { bytes } of [...jammed.made, ...madeSegments(1).made]) collector.offer(TOPICS.segments, bytes);
+  await collector.settle();
+  const decoded = (): string[] =>
+    events.flatMap((event) => (event.event === 'chain' && event.kind === 'decoded' ? [event.gateway] : []));
+  expect(decoded()).toEqual(['gw-3']);
+  expect(events).toContainEqual({ event: 'failed', message: expect.stringContaining('jammed') });
+  await sql`DROP TRIGGER jam`.execute(store.db);
+  await collector.refresh();
+  expect(decoded()).toEqual(['gw-3']);
+  nowMs += 60_000;
+  await collector.refresh();
+  expect(decoded()).toEqual(['gw-3', 'gw-1']);
+  await store.close();
+});
+
+test('a store that fails is not taken for a bundle that is none; the file is read again', async () => {
+  const store = await openStore(testFolder());
+  const shelf = new Shelf(store, shelfFolder([bundle.document]));
+  await sql`ALTER TABLE bundles RENAME TO aside`.execute(store.db);
+  await expect(shelf.refresh()).rejects.toThrow(/bundles/);
+  await sql`ALTER TABLE aside RENAME TO bundles`.execute(store.db);
+  const { added, refused } = await shelf.refresh();
+  expect(added).toHaveLength(1);
+  expect(refused).toEqual([]);
+  await store.close();
 });
