@@ -6,6 +6,7 @@ import type { RollOutcome } from '../desk/roll.ts';
 import { TrainError } from '../errors.ts';
 import { readBytesFile } from '../key-file.ts';
 import { seconds } from '../option-values.ts';
+import { printable } from '../text-table.ts';
 import { rootOption } from '../topic-option.ts';
 
 interface RollCommandOptions {
@@ -68,7 +69,7 @@ function outcomeText(outcome: RollOutcome, site: string, waitSeconds: number): s
     case 'serving':
       return `${site}: ${gateway} serves the bundle, ${(outcome.tookMs / 1000).toFixed(1)} s after it was published`;
     case 'refused':
-      return `${site}: ${gateway} refused the bundle: ${outcome.reason}`;
+      return `${site}: ${gateway} refused the bundle: ${printable(outcome.reason ?? 'no reason given')}`;
     case 'silent':
       return outcome.health === null
         ? `${site}: no gateway spoke within ${waitSeconds} s; the bundle stays on its topic (retained). Check that the ` +
@@ -81,5 +82,7 @@ function outcomeText(outcome: RollOutcome, site: string, waitSeconds: number): s
 /** A gateway speaks once about a bundle it refuses; rolled out again, the word is an old one. */
 function lastRefusal(health: HealthMessage): string {
   const change = health.last_change;
-  return change?.outcome === 'refused' ? `; it last refused one at ${change.at}: ${change.reason}` : '';
+  return change?.outcome === 'refused'
+    ? `; it last refused one at ${change.at}: ${printable(change.reason ?? 'no reason given')}`
+    : '';
 }

@@ -3,7 +3,7 @@
  * quality, age and limits. A forecast past its own `valid_until` is shown as stale, never as a forecast.
  */
 import { ADVISORY, type ForecastMessage, type HealthMessage, type StateMessage } from '@stillwell/protocol';
-import { momentText, shortNumber, spanText } from '../text-table.ts';
+import { momentText, printable, shortNumber, spanText } from '../text-table.ts';
 import { bandPlot } from './band-plot.ts';
 
 /** The newest of each message of one site. */
@@ -67,13 +67,13 @@ export function viewOf(forecast: ForecastMessage, state: StateMessage | null, no
   }));
   return {
     signal: forecast.signal,
-    unit: forecast.unit,
+    unit: printable(forecast.unit),
     now: state?.filtered[forecast.signal] ?? null,
     origin: forecast.origin,
     validUntil: forecast.valid_until,
     isStale: nowMs > Date.parse(forecast.valid_until),
     quality: forecast.quality ?? null,
-    qualityReason: forecast.quality_reason ?? null,
+    qualityReason: forecast.quality_reason ? printable(forecast.quality_reason) : null,
     ageMs: forecast.last_reading_at === null ? null : nowMs - Date.parse(forecast.last_reading_at),
     inputs: forecast.inputs,
     coverage: forecast.coverage,

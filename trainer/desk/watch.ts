@@ -10,6 +10,8 @@ import {
   topicsOf,
 } from '@stillwell/protocol';
 import { clientIdFor, connectBroker, subscribeTo } from '../broker.ts';
+import { TrainError } from '../errors.ts';
+import { printable } from '../text-table.ts';
 import type { WatchedSite } from './watch-view.ts';
 
 /** Whom to follow, and whom to tell. */
@@ -39,14 +41,15 @@ export async function followSite(options: WatchOptions): Promise<{ stop(): Promi
     let signal: string | null = null;
     try {
       if (parsed?.kind === 'forecast') {
-        const forecast = parseForecastMessage(payload);
+        const forecast = own(parseForecastMessage(payload), options.site);
+        checkSignal(forecast.signal, parsed.signal);
         signal = forecast.signal;
         forecasts.set(signal, forecast);
-      } else if (parsed?.kind === 'state') state = parseStateMessage(payload);
-      else if (parsed?.kind === 'health') health = parseHealthMessage(payload);
+      } else if (parsed?.kind === 'state') state = own(parseStateMessage(payload), options.site);
+      else if (parsed?.kind === 'health') health = own(parseHealthMessage(payload), options.site);
       else return;
     } catch (error) {
-      options.onTrouble(`${topic}: ${(error as Error).message}`);
+      options.onTrouble(printable(`${topic}: ${(error as Error).message}`));
       return;
     }
     options.onChange({ site: options.site, forecasts, state, health }, signal);
@@ -66,4 +69,15 @@ export async function followSite(options: WatchOptions): Promise<{ stop(): Promi
   // The state first: with it the first forecast already shows the value now.
   for (const filter of [topics.health, topics.state, topics.forecast('+')]) await subscribeTo(connection, [filter]);
   return { stop: () => connection.end() };
+}
+
+/** A message of another site on this site's topic must not be shown as this site's. */
+function own<T extends { readonly site: string }>(message: T, site: string): T {
+  if (message.site === site) return message;
+  throw new TrainError('broker', `expected a message of site "${site}", got one of "${message.site}"; passed over`);
+}
+
+function checkSignal(named: string, topic: string | null): void {
+  if (named === topic) return;
+  throw new TrainError('broker', `expected a forecast of signal "${topic}", got one of "${named}"; passed over`);
 }

@@ -1,8 +1,19 @@
 /** What a person sees: values, bounds, plots, ages; a forecast past its time never looks like one. */
-import { ADVISORY, forecastMessage, parseForecastMessage, parseStateMessage, stateMessage } from '@stillwell/protocol';
-import { describe, expect, test } from 'vitest';
+import {
+  ADVISORY,
+  forecastMessage,
+  parseForecastMessage,
+  parseStateMessage,
+  stateMessage,
+  topicsOf,
+} from '@stillwell/protocol';
+import { openConnection } from '@stillwell/runtime/mqtt';
+import { describe, expect, onTestFinished, test } from 'vitest';
 import { bandPlot } from '../../../trainer/desk/band-plot.ts';
+import { followSite } from '../../../trainer/desk/watch.ts';
 import { newestTickEndMs, screenText, viewLine, viewOf } from '../../../trainer/desk/watch-view.ts';
+import { startAedes } from '../../support/broker.ts';
+import { until } from '../../support/until.ts';
 
 const ORIGIN = Date.UTC(2026, 4, 1, 12);
 const head = {
@@ -103,4 +114,45 @@ describe('the plot', () => {
     expect(flat.map((row) => row.trim().length)).toEqual([0, 2, 0]);
     expect(bandPlot({ median: [1, 9], lower: [1, 9], upper: [1, 9] }, 10, 1)).toHaveLength(1);
   });
+});
+
+test('text of a message cannot redraw the terminal', () => {
+  const hostile = { ...forecast, unit: 'm\u001b[2J', quality_reason: 'drift\u009b1A\n' };
+  const text = viewLine(viewOf(hostile, state, ORIGIN + 90_000));
+  expect(text).not.toMatch(/\p{Cc}/u);
+  expect(text).toContain('m?[2J');
+});
+
+test('a forecast under the topic of another site or signal is passed over and told, not shown', async () => {
+  const broker = await startAedes();
+  onTestFinished(() => broker.stop());
+  const shown: (string | null)[] = [];
+  const troubles: string[] = [];
+  const following = await followSite({
+    broker: broker.url,
+    root: 'stillwell',
+    site: 'pump-7',
+    onChange: (_, signal) => shown.push(signal),
+    onTrouble: (text) => troubles.push(text),
+  });
+  onTestFinished(() => following.stop());
+  const sender = openConnection({ url: broker.url, clientId: 'sender', protocol: 4, onMessage: () => {} });
+  onTestFinished(() => sender.end());
+  await sender.firstConnect(5000);
+  const send = (signal: string, message: object) =>
+    sender.publish({
+      topic: topicsOf('stillwell', 'pump-7').forecast(signal),
+      payload: Buffer.from(JSON.stringify(message)),
+      qos: 1,
+      retain: false,
+    });
+  await send('level', { ...forecast, site: 'pump-8' });
+  await send('flow', forecast);
+  await send('level', forecast);
+  await until('the honest forecast is shown', () => shown.length > 0);
+  expect(shown).toEqual(['level']);
+  expect(troubles).toEqual([
+    expect.stringContaining('expected a message of site "pump-7", got one of "pump-8"'),
+    expect.stringContaining('expected a forecast of signal "flow", got one of "level"'),
+  ]);
 });
