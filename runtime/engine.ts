@@ -281,11 +281,14 @@ export class Engine {
 
   /** Past an outage too long to bridge tick by tick: go on just before now, with a filter that starts afresh. */
   #jump(due: number): void {
-    const next = this.aligner.nextTick;
-    if (next === null) return;
-    this.aligner.startAt(next + due - 1);
-    this.counters.skippedTicks += due - 1;
-    this.#options.note('warn', `outage of ${due} ticks: too long to bridge, the filter starts afresh`);
+    const isStart = this.aligner.nextTick === null;
+    this.aligner.skip(due - 1);
+    if (isStart)
+      this.#options.note('warn', `a reading ${due} ticks old came first: too old to start from, passed over`);
+    else {
+      this.counters.skippedTicks += due - 1;
+      this.#options.note('warn', `outage of ${due} ticks: too long to bridge, the filter starts afresh`);
+    }
     if (this.#serving === null || this.#journal === null) return;
     const after = new Serving(this.#serving.checked);
     this.#journal.turnOver(this.#serving, after);

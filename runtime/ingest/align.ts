@@ -109,6 +109,11 @@ export class Aligner {
     for (const known of this.#ticks.keys()) if (known < tick) this.#ticks.delete(known);
   }
 
+  /** Passes over the next `count` ticks, which are then closed without a value. */
+  skip(count: number): void {
+    this.startAt((this.#nextTick ?? this.#firstTick()) + count);
+  }
+
   /**
    * Places one reading.
    *

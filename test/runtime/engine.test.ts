@@ -219,6 +219,25 @@ describe('a failing disk', () => {
   });
 });
 
+describe('a first reading from long ago', () => {
+  test.each([
+    ['before the first bundle', null],
+    ['with a bundle', FIRST],
+  ])('is passed over at once, %s', (_, sealed) => {
+    const { engine } = start(new MemoryDisk(), 60, sealed);
+    const { topic } = plantMessage(0, 0, 2);
+    // A sensor whose clock was never set, retained at the broker.
+    engine.message(topic, Buffer.from('{"v": 2, "t": "1970-01-01T00:00:00Z"}'), 0, null);
+    const before = plant[0]!.find((message) => message.topic !== topic)!;
+    engine.message(before.topic, before.payload, before.timeMs, null);
+    engine.message(before.topic, before.payload, before.timeMs, null);
+    expect(engine.close((FIRST_TICK + 1) * 60_000 + site.latenessMs)).toBe(1);
+    expect(engine.aligner.nextTick).toBe(FIRST_TICK + 1);
+    expect(engine.counters.skippedTicks).toBe(0);
+    expect(engine.serving?.tick ?? FIRST_TICK).toBe(FIRST_TICK);
+  });
+});
+
 describe('a change of bundle', () => {
   test('warms on the recent ticks, keys the next segment and survives a cut at any operation', () => {
     const quiet = start(new MemoryDisk());
