@@ -96,7 +96,7 @@ export function healthPayload(report: HealthReport): Uint8Array {
       segments_parked: ship.parked,
       segments_in_conflict: ship.conflicts,
       segments_shed: journal?.counts.shedSegments ?? 0,
-      segments_lost: journal?.counts.lost ?? 0,
+      segments_lost: (journal?.counts.lost ?? 0) + spool.damaged,
       spool_bytes: spool.bytes,
       reconnects: report.reconnects,
     },

@@ -124,11 +124,18 @@ export class Shipper {
   }
 
   #send(entry: Waiting, attempt: Attempt): void {
-    const bytes = this.#options.spool.read(entry);
-    if (bytes === null) return;
-    if (attempt.tries > 0) this.#counts.resent++;
+    const isAgain = attempt.tries > 0;
     attempt.tries++;
     attempt.sentAt = this.#options.clock.monotonic();
+    let bytes: Uint8Array | null;
+    try {
+      bytes = this.#options.spool.read(entry);
+    } catch {
+      // The disk does not give it now; asked again as if it had been sent and lost.
+      return;
+    }
+    if (bytes === null) return;
+    if (isAgain) this.#counts.resent++;
     attempt.isUnderWay = true;
     this.#options
       .send(bytes)

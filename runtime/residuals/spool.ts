@@ -27,6 +27,7 @@ export class Spool {
   readonly #maxBytes: number;
   readonly #entries: Waiting[] = [];
   #bytes = 0;
+  #damaged = 0;
 
   /**
    * maxBytes  most bytes kept; the newest segment is kept whatever its size
@@ -55,6 +56,11 @@ export class Spool {
     return this.#bytes;
   }
 
+  /** Segments since the start whose file was gone or damaged when it was to be sent. */
+  get damaged(): number {
+    return this.#damaged;
+  }
+
   /** Writes a segment durably. It is listed, so `waiting` shows it: the caller releases it by sending. */
   put(stream: string, number: number, segment: Uint8Array): void {
     replaceOn(this.#disk, this.#path(stream, number), segment);
@@ -74,6 +80,7 @@ export class Spool {
     } catch {
       // Damaged on disk: sending it would only make the desk refuse it.
     }
+    this.#damaged++;
     this.#drop(entry);
     return null;
   }

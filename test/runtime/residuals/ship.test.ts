@@ -121,6 +121,33 @@ describe('sending', () => {
   });
 });
 
+test('a disk that does not give a segment is asked again later and stops nothing', async () => {
+  put(0, 1);
+  shipper.release(STREAM, 2);
+  const read = disk.read.bind(disk);
+  disk.read = (path) => {
+    if (path.includes('-0000000000')) throw Object.assign(new Error('EIO: i/o error, read'), { code: 'EIO' });
+    return read(path);
+  };
+  shipper.connected();
+  expect(sent).toEqual([1]);
+  expect(await poke()).toEqual([]);
+  disk.read = read;
+  now = 30_000;
+  expect(await poke()).toEqual([0, 1]);
+  expect(spool.damaged).toBe(0);
+});
+
+test('a segment damaged on disk is dropped and counted', async () => {
+  put(0, 1);
+  shipper.release(STREAM, 2);
+  disk.write(`spool/${disk.list('spool')[0]}`, new Uint8Array(10));
+  shipper.connected();
+  expect(sent).toEqual([1]);
+  expect(spool.waiting).toHaveLength(1);
+  expect(spool.damaged).toBe(1);
+});
+
 test('a receipt with another hash deletes nothing and sets the segment aside', async () => {
   put(0);
   shipper.release(STREAM, 1);
