@@ -7,7 +7,7 @@ import { nodeDisk } from '../disk.ts';
 import { RuntimeError } from '../errors.ts';
 import { type DecodedReading, ReadingDecoder } from '../ingest/decode.ts';
 import { refusedBecause } from '../ingest/quality.ts';
-import { openConnection } from '../mqtt/connection.ts';
+import { openConnection, shownBroker } from '../mqtt/connection.ts';
 import { brokerOptions, siteOptions } from './options.ts';
 
 interface CheckOptions extends Omit<RawOptions, 'data'> {
@@ -94,7 +94,7 @@ async function listen(
   try {
     await connection.firstConnect(CONNECT_MS);
     const protocol = connection.protocol === 5 ? '5' : '3.1.1';
-    say(`broker    ${broker.url.replace(/\/\/[^@]*@/, '//')}: connected, MQTT ${protocol}`);
+    say(`broker    ${shownBroker(broker.url)}: connected, MQTT ${protocol}`);
     await connection.subscribe([...decoder.filters, topicsOf(site.root, site.site).bundle], 1, CONNECT_MS);
     await new Promise((resolve) => setTimeout(resolve, seconds * 1000));
     return { protocol, heard };

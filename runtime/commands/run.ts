@@ -10,6 +10,7 @@ import { Gateway } from '../gateway.ts';
 import { takeLock } from '../lock.ts';
 import { createLog } from '../log.ts';
 import { keepHeapSmall } from '../memory.ts';
+import { shownBroker } from '../mqtt/connection.ts';
 import { brokerOptions, siteOptions } from './options.ts';
 
 interface RunOptions extends RawOptions {
@@ -55,7 +56,7 @@ async function run(options: RunOptions): Promise<void> {
   try {
     gateway = new Gateway(config, { clock: systemClock, disk: nodeDisk, log });
     log.info(
-      `gateway ${config.gateway} of site ${config.site.site}: ${config.site.signals.length} signals, broker ${config.broker.url}`,
+      `gateway ${config.gateway} of site ${config.site.site}: ${config.site.signals.length} signals, broker ${shownBroker(config.broker.url)}`,
     );
     if (first !== null) offerFirst(gateway, first, options.bundle!);
     if (gateway.engine.serving === null) log.info('no bundle yet: waiting for one from the broker or from `load`');

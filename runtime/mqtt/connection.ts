@@ -14,7 +14,7 @@ import { openStream, parseBrokerUrl } from './stream.ts';
 import { asBuffer, plainReason, publishOptions, willOptions } from './translate.ts';
 import type { Connection, ConnectionOptions, Outgoing } from './types.ts';
 
-export { parseBrokerUrl } from './stream.ts';
+export { parseBrokerUrl, shownBroker } from './stream.ts';
 export type { Connection, ConnectionEvent, ConnectionOptions, IncomingPacket, Outgoing, Will } from './types.ts';
 
 const DEFAULT_KEEP_ALIVE_SECONDS = 30;
@@ -204,7 +204,8 @@ class LastingConnection implements Connection {
       if (typeof code === 'number') answered = true;
       if (this.#options.protocol === 'auto' && UNSUPPORTED_VERSION.has(code as number)) {
         this.#version = version === 5 ? 4 : 5;
-        reason = 'unsupported-version';
+        // From the older one back to the newer only after a wait: a broker that takes neither must not be hammered.
+        reason = version === 5 ? 'unsupported-version' : 'it takes neither MQTT 5 nor 3.1.1';
       }
     });
     client.on('disconnect', (packet) => {

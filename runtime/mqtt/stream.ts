@@ -32,13 +32,23 @@ export function parseBrokerUrl(text: string): BrokerAddress {
   try {
     url = new URL(text);
   } catch (cause) {
-    throw new RuntimeError('options', `broker "${text}": expected an address such as mqtt://localhost:1883`, { cause });
+    throw new RuntimeError(
+      'options',
+      `broker "${shownBroker(text)}": expected an address such as mqtt://localhost:1883`,
+      { cause },
+    );
   }
   const secure = url.protocol === 'mqtts:';
   if (!secure && url.protocol !== 'mqtt:')
-    throw new RuntimeError('options', `broker "${text}": expected mqtt:// or mqtts://, got ${url.protocol}//`);
+    throw new RuntimeError(
+      'options',
+      `broker "${shownBroker(text)}": expected mqtt:// or mqtts://, got ${url.protocol}//`,
+    );
   if (url.hostname === '' || (url.pathname !== '' && url.pathname !== '/'))
-    throw new RuntimeError('options', `broker "${text}": expected host and port alone, such as mqtt://localhost:1883`);
+    throw new RuntimeError(
+      'options',
+      `broker "${shownBroker(text)}": expected host and port alone, such as mqtt://localhost:1883`,
+    );
   return {
     host: url.hostname.replace(/^\[(.*)\]$/, '$1'),
     port: url.port === '' ? (secure ? 8883 : 1883) : Number(url.port),
@@ -46,6 +56,11 @@ export function parseBrokerUrl(text: string): BrokerAddress {
     username: url.username === '' ? null : decoded(url.username),
     password: url.password === '' ? null : decoded(url.password),
   };
+}
+
+/** A broker's address as it may be shown: without user and password. */
+export function shownBroker(text: string): string {
+  return text.replace(/\/\/.*@/, '//');
 }
 
 /** A part of an address; never repeated in a refusal, since it may be a password. */
