@@ -86,7 +86,13 @@ class NodeAppendFile implements AppendFile {
 
   constructor(path: string, keepBytes: number) {
     this.#descriptor = openSync(path, 'a');
-    ftruncateSync(this.#descriptor, keepBytes);
+    try {
+      ftruncateSync(this.#descriptor, keepBytes);
+    } catch (cause) {
+      // A failing disk is tried every half minute; each try would keep a descriptor.
+      closeSync(this.#descriptor);
+      throw cause;
+    }
   }
 
   append(bytes: Uint8Array): void {
