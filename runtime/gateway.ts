@@ -299,7 +299,9 @@ export class Gateway {
     if (this.#isStopping) return;
     const { serving } = this.engine;
     if (serving !== null && serving.tick >= 0) {
-      const issuedAtMs = this.#config.clock === 'wall' ? this.#ports.clock.wall() : this.engine.aligner.newestMs;
+      const wall = this.#ports.clock.wall();
+      const byWall = this.#config.clock === 'wall' && wall >= CLOCK_UNSET_MS;
+      const issuedAtMs = byWall ? wall : this.engine.aligner.newestMs;
       this.#publisher.tick(serving, this.engine.aligner.lastReadingMs, issuedAtMs);
     }
     this.#tend(false);

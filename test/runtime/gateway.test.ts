@@ -270,3 +270,15 @@ test('by the wall clock, forecasts come though the plant is silent, and say that
   expect(forecastOf(there).last_reading_at).toBe(new Date((FIRST_TICK + 5) * 60_000 + 9000).toISOString());
   await until('running in health', () => healthOf(there).status === 'running');
 });
+
+test('with a clock never set, forecasts carry the time of the readings', async () => {
+  const there = await world(startAedes());
+  const gateway = startGateway(there, await testFolder(), { clock: 'wall' }, () => 1000);
+  gateway.offerBundle(FIRST, 'from a file');
+  await play(there, gateway, 0, 5);
+  await until('forecast', () => there.latest.has(topics.forecast('level')));
+  await until('of the last tick', () => Date.parse(forecastOf(there).origin) === (FIRST_TICK + 4) * 60_000);
+  const { issued_at, valid_until } = forecastOf(there);
+  expect(Date.parse(issued_at)).toBeGreaterThanOrEqual((FIRST_TICK + 5) * 60_000);
+  expect(Date.parse(issued_at)).toBeLessThan(Date.parse(valid_until));
+});
