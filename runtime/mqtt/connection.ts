@@ -26,6 +26,8 @@ const OWN_WINDOW = 16;
 /** Messages that an MQTT 5 broker may leave unacknowledged with us; without a word it may be 65,535, all counted as queued. */
 const RECEIVE_MAXIMUM = 100;
 const TAKE_OVERS_BEFORE_STOP = 3;
+/** Two that fight for a client id meet within minutes; what came by longer ago is no fight. */
+const TAKE_OVERS_WITHIN_MS = 3_600_000;
 /** A connection that held so long was a good one. */
 const STABLE_MS = 10_000;
 /** Reason codes of MQTT 5 (2.4) and return codes of 3.1.1 (3.2.2.3). */
@@ -59,6 +61,7 @@ class LastingConnection implements Connection {
   #connectedAt = 0;
   #shortLived = 0;
   #takeOvers = 0;
+  #takenOverAt = 0;
   #retry: NodeJS.Timeout | null = null;
   #ended = false;
 
@@ -310,7 +313,9 @@ class LastingConnection implements Connection {
   }
 
   #noteTakeOver(): void {
-    this.#takeOvers++;
+    const now = performance.now();
+    this.#takeOvers = now - this.#takenOverAt > TAKE_OVERS_WITHIN_MS ? 1 : this.#takeOvers + 1;
+    this.#takenOverAt = now;
     this.#options.onState?.({ kind: 'taken-over', count: this.#takeOvers });
     if (this.#takeOvers < TAKE_OVERS_BEFORE_STOP) return;
     const reason = `another client uses the client id "${this.#options.clientId}" on ${this.#where()}; stop one of the two`;
