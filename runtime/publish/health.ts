@@ -15,6 +15,8 @@ import { type Judged, judge } from './quality.ts';
 
 /** 9999-12-31: what a will says stays true until it is replaced. */
 const FOREVER_MS = 253_402_300_799_000;
+/** A clock is put right by less than this every now and then. */
+const CLOCK_AHEAD_TICKS = 3;
 const VERSIONS = {
   stillwell: VERSION,
   node: process.versions.node,
@@ -29,6 +31,8 @@ export interface HealthReport {
   readonly site: string;
   readonly gateway: string;
   readonly nowMs: number;
+  /** Null where ticks close by the readings' own time; otherwise ms. */
+  readonly wallTickMs: number | null;
   /** How long the message holds without a new one. */
   readonly holdsMs: number;
   readonly status: HealthStatus;
@@ -105,11 +109,22 @@ export function healthPayload(report: HealthReport): Uint8Array {
   });
 }
 
-function judgeGateway({ engine, status }: HealthReport): Judged {
+function judgeGateway(report: HealthReport): Judged {
+  const { engine, status } = report;
   const { serving, journal } = engine;
   if (status === 'stopped') return { quality: 'F', qualityReason: 'stopped' };
   if (serving === null) return { quality: 'F', qualityReason: 'no bundle serves' };
   const fault = journal?.fault ?? null;
   if (fault !== null) return { quality: 'M', qualityReason: `nothing is being kept on disk: ${fault}` };
-  return judge(serving, false, null);
+  return judgeClock(report) ?? judge(serving, false, null);
+}
+
+/** By the wall clock no tick closes before its end: one closed ahead of now says that the clock was set back. */
+function judgeClock({ engine, nowMs, wallTickMs }: HealthReport): Judged | null {
+  const { nextTick } = engine.aligner;
+  if (wallTickMs === null || nextTick === null) return null;
+  const closedToMs = nextTick * wallTickMs;
+  if (closedToMs - nowMs < CLOCK_AHEAD_TICKS * wallTickMs) return null;
+  const until = new Date(closedToMs).toISOString();
+  return { quality: 'M', qualityReason: `the clock was set back: nothing is taken or forecast before ${until}` };
 }

@@ -89,12 +89,13 @@ export class Publisher {
     }
     this.#healthAt = now;
     this.#isHealthWanted = false;
-    const { site, gateway, healthSeconds, data } = this.#config;
+    const { site, gateway, clock, healthSeconds, data } = this.#config;
     const payload = healthPayload({
       ...report,
       site: site.site,
       gateway,
       nowMs: this.#ports.clock.wall(),
+      wallTickMs: clock === 'wall' ? site.tickMs : null,
       holdsMs: 3 * healthSeconds * 1000,
       reconnects: this.reconnects,
     });

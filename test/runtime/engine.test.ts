@@ -1,8 +1,9 @@
-import { readSegmentHead, SegmentReader, segmentHash } from '@stillwell/protocol';
+import { parseHealthMessage, readSegmentHead, SegmentReader, segmentHash } from '@stillwell/protocol';
 import { saveBounds, saveState } from '@stillwell/runtime/filter';
 import { describe, expect, test } from 'vitest';
 import { BundleKeeper } from '../../runtime/bundle/change.ts';
 import { Engine } from '../../runtime/engine.ts';
+import { healthPayload } from '../../runtime/publish/health.ts';
 import { MemoryDisk, PowerCut, type Survival } from '../support/memory-disk.ts';
 import { seededNumbers } from '../support/models.ts';
 import {
@@ -236,6 +237,26 @@ describe('a first reading from long ago', () => {
     expect(engine.counters.skippedTicks).toBe(0);
     expect(engine.serving?.tick ?? FIRST_TICK).toBe(FIRST_TICK);
   });
+});
+
+test('health says when the clock was set back behind the ticks closed by it', () => {
+  const run = start(new MemoryDisk());
+  feed(run, 0, TICKS);
+  const closedMs = (FIRST_TICK + TICKS) * 60_000;
+  const reasonAt = (nowMs: number, wallTickMs: number | null): string | undefined => {
+    const ship = { sent: 0, resent: 0, confirmed: 0, conflicts: 0, parked: 0 };
+    const status = 'running' as const;
+    const about = { site: site.site, gateway: 'g1', holdsMs: 1000, lastChange: null, reconnects: 0 };
+    const bytes = healthPayload({ ...about, status, engine: run.engine, ship, nowMs, wallTickMs });
+    return parseHealthMessage(bytes).quality_reason;
+  };
+  const usual = reasonAt(closedMs, 60_000);
+  expect(usual ?? '').not.toContain('clock');
+  expect(reasonAt(closedMs - 60_000, 60_000)).toBe(usual);
+  expect(reasonAt(closedMs - 180_000, 60_000)).toContain(
+    `clock was set back: nothing is taken or forecast before ${new Date(closedMs).toISOString()}`,
+  );
+  expect(reasonAt(closedMs - 180_000, null)).toBe(usual);
 });
 
 describe('a change of bundle', () => {
