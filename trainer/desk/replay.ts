@@ -83,6 +83,7 @@ function runThrough(reader: SegmentReader, model: LinearModel, state: FilterStat
   const lattice = new Float64Array(reader.head.ticks * nc);
   const predicted = new Float64Array(nc);
   const row = new Float64Array(nc);
+  const started = new Uint8Array(nc);
   const sums = {
     residualCount: new Float64Array(nc),
     residualSum: new Float64Array(nc),
@@ -97,8 +98,9 @@ function runThrough(reader: SegmentReader, model: LinearModel, state: FilterStat
       if (!Number.isNaN(row[c])) readings++;
       row[c] = latticeValue(row[c]!, model.latticeStep[c]!, model.latticeOffset[c]!);
     }
+    started.set(state.started);
     update(model, state, reader.head.firstTick + i, row);
-    addResiduals(model, state, sums);
+    addResiduals(model, state, started, sums);
   }
   return { lattice, readings, ...sums };
 }
@@ -109,14 +111,16 @@ function predictSteps(model: LinearModel, state: FilterState, out: Float64Array)
   for (let c = 0; c < out.length; c++) out[c] = (out[c]! - model.latticeOffset[c]!) / model.latticeStep[c]!;
 }
 
+/** The first reading of a channel stands against the filter's start, not against a forecast: it says nothing of the model. */
 function addResiduals(
   model: LinearModel,
   state: FilterState,
+  started: Uint8Array,
   sums: { residualCount: Float64Array; residualSum: Float64Array; residualSquareSum: Float64Array },
 ): void {
   for (let c = 0; c < model.channelCount; c++) {
     const share = state.innovation[c]! / model.residualScale[c]!;
-    if (!Number.isFinite(share)) continue;
+    if (started[c] === 0 || !Number.isFinite(share)) continue;
     sums.residualCount[c]! += 1;
     sums.residualSum[c]! += share;
     sums.residualSquareSum[c]! += share * share;

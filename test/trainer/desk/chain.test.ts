@@ -209,6 +209,19 @@ test('a segment of a clock far outside the calendar is decoded and told of, and 
   await desk.store.close();
 });
 
+test('the first reading of a channel is no residual: there was no forecast of it', async () => {
+  const desk = await openDesk(testFolder());
+  const maker = new SegmentMaker(SITE, 'gw-1', first.document, first.model);
+  const rows = syntheticReadings(first.model, 3, 7, 0);
+  for (const [i, row] of rows.entries()) maker.tick(START + i, row);
+  maker.close();
+  await deliver(desk, [maker.made[0]!.bytes]);
+  expect((await readStatus(desk.store))[0]!.residuals.map((one) => one.count)).toEqual(
+    first.bundle.channels.filter((channel) => channel.role === 'signal').map(() => 2),
+  );
+  await desk.store.close();
+});
+
 test('bits per reading count the segments that the readings came from, not those that wait', async () => {
   const counts = new DeskCounts();
   const place = { site: SITE, gateway: 'gw-1', stream: '00', number: 1 };
