@@ -48,10 +48,9 @@ export function compare(result: FitResult, previous: OpenDocument, series: Serie
     coverage: meanCoverage(fresh, i),
     previousCoverage: meanCoverage(old, i),
   }));
-  const known = signals.map((one) => one.ratio).filter((ratio) => Number.isFinite(ratio) && ratio > 0);
-  const ratio = Math.exp(meanOf(Float64Array.from(known, Math.log)));
+  const { ratio, isNoneMuchWorse } = overall(signals.map((one) => one.ratio));
   const seenByPrevious = shareSeen(result, previous);
-  const isRecommended = ratio < 1 - EQUAL_BAND && known.every((one) => one < MUCH_WORSE) && result.verdicts.hasSkill;
+  const isRecommended = ratio < 1 - EQUAL_BAND && isNoneMuchWorse && result.verdicts.hasSkill;
   const facts = { ratio, signals, seenByPrevious, isRecommended };
   return {
     fromMs: fresh.fromMs,
@@ -59,6 +58,18 @@ export function compare(result: FitResult, previous: OpenDocument, series: Serie
     origins: fresh.origins,
     ...facts,
     sentence: sentenceOf(facts, result.verdicts.hasSkill),
+  };
+}
+
+/**
+ * Geometric mean of the signals' ratios, and whether none is much worse. A signal that the previous model forecast without
+ * any error has an infinite ratio: it cannot stand in a mean, but it is the worst there is. NaN (nothing to judge) says nothing.
+ */
+export function overall(ratios: readonly number[]): { readonly ratio: number; readonly isNoneMuchWorse: boolean } {
+  const known = ratios.filter((ratio) => Number.isFinite(ratio) && ratio > 0);
+  return {
+    ratio: Math.exp(meanOf(Float64Array.from(known, Math.log))),
+    isNoneMuchWorse: !ratios.some((ratio) => ratio >= MUCH_WORSE),
   };
 }
 
