@@ -54,6 +54,13 @@ export async function gatherOutcome(inputs: Inputs): Promise<Omit<StoryResult, '
   const verdicts = [
     ...outcomes.flatMap(siteVerdicts),
     ...refitVerdicts(before, after),
+    // Without one sent twice, the promise that doubles are kept once would be kept by doing nothing.
+    expectBetween(
+      'fleet',
+      'segments were sent twice on purpose',
+      sumOf(outcomes, (one) => one.counts.doubled),
+      [1, Number.POSITIVE_INFINITY],
+    ),
     expectExactly('fleet', 'every message of a gateway can be read', fleet.unreadable.length, 0),
   ];
   return {
@@ -98,11 +105,7 @@ function siteVerdicts({ site, scores, counts, desk, archive, memory }: SiteOutco
       COVERAGE,
       percent,
     ),
-    expectExactly(site.name, 'segments lost', counts.segments - desk.segments + desk.broken, 0),
-    expectBetween(site.name, 'doubled segments were seen and kept once', desk.doubled, [
-      counts.doubled,
-      Number.POSITIVE_INFINITY,
-    ]),
+    ...segmentVerdicts(site.name, counts, desk),
     {
       subject: site.name,
       promise: 'archive holds every reading the sensors said, bit for bit',
@@ -129,6 +132,26 @@ function siteVerdicts({ site, scores, counts, desk, archive, memory }: SiteOutco
       (x) => `${x.toFixed(0)} MiB`,
     ),
   ];
+}
+
+/** What passed the broker against what the desk kept. A difference of either sign is one: the two must not cancel. */
+export function segmentVerdicts(
+  site: string,
+  counts: Pick<SegmentCounts, 'segments' | 'doubled'>,
+  desk: Pick<DeskSite, 'segments' | 'broken' | 'doubled'>,
+): Verdict[] {
+  return [
+    expectExactly(site, 'segments sent and not kept, or kept and never sent', desk.segments - counts.segments, 0),
+    expectExactly(site, 'segments that could not be decoded', desk.broken, 0),
+    expectBetween(site, 'doubled segments were seen and kept once', desk.doubled, [
+      counts.doubled,
+      Number.POSITIVE_INFINITY,
+    ]),
+  ];
+}
+
+function sumOf(outcomes: readonly SiteOutcome[], pick: (one: SiteOutcome) => number): number {
+  return outcomes.reduce((sum, one) => sum + pick(one), 0);
 }
 
 function refitVerdicts(before: Score | null, after: Score | null): Verdict[] {
