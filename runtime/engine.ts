@@ -62,7 +62,10 @@ export class Engine {
     let identity = openIdentity(disk, folder, site.site, gateway, options.stream);
     let recovered = recover(disk, folder, identity.stream);
     if (recovered === 'damaged') {
-      options.note('warn', 'the checkpoint is damaged: a new stream of segments starts, the filter starts afresh');
+      options.note(
+        'warn',
+        'the checkpoint is gone or damaged: a new stream of segments starts, the filter starts afresh',
+      );
       identity = renewIdentity(disk, folder, identity);
       recovered = null;
     }

@@ -61,11 +61,11 @@ export function renewIdentity(disk: Disk, folder: string, identity: Identity): I
 /**
  * Reads checkpoint and journal files.
  *
- * returns  null for a folder without a checkpoint; 'damaged' when there is one that cannot be continued
+ * returns  null for a fresh folder; 'damaged' when the checkpoint is gone or cannot be continued
  */
 export function recover(disk: Disk, folder: string, stream: Uint8Array): Recovered | 'damaged' | null {
   const bytes = disk.read(checkpointPath(folder));
-  if (bytes === null) return null;
+  if (bytes === null) return hasCountedOn(disk, folder) ? 'damaged' : null;
   const checkpoint = decodeCheckpoint(bytes);
   if (checkpoint === null || Buffer.compare(checkpoint.stream, stream) !== 0) return 'damaged';
   const kept: KeptJournal[] = [];
@@ -85,6 +85,11 @@ export function recover(disk: Disk, folder: string, stream: Uint8Array): Recover
   const validBytes = content?.validBytes ?? 0;
   const earlier = recordsOf(disk, folder, stream, kept);
   return { checkpoint, records: content?.records ?? [], validBytes, tornBytes: size - validBytes, kept, earlier };
+}
+
+/** Whether numbers were given away already: starting at 0 again would give them to other contents. */
+function hasCountedOn(disk: Disk, folder: string): boolean {
+  return disk.list(journalFolder(folder)).some((name) => Number(/^(\d{10})\.swj$/.exec(name)?.[1] ?? 0) > 0);
 }
 
 /** One file in memory at a time. */

@@ -194,6 +194,20 @@ describe('a power cut', () => {
   });
 });
 
+test('a checkpoint that is gone starts a new stream, since its numbers were given away', () => {
+  const first = start(new MemoryDisk());
+  feed(first, 0, 130);
+  first.engine.stop();
+  const waiting = first.engine.spool.waiting.length;
+  expect(waiting).toBe(2);
+  first.disk.remove('data/checkpoint');
+  const second = start(first.disk);
+  expect(second.engine.identity.stream).not.toEqual(STREAM);
+  feed(second, 130, TICKS);
+  expect(second.engine.spool.waiting.filter(({ stream }) => stream === '09'.repeat(8))).toHaveLength(waiting);
+  expect(start(second.disk).engine.identity.stream).toEqual(second.engine.identity.stream);
+});
+
 describe('a failing disk', () => {
   test('does not stop the filter, and the record is whole once the disk works again', () => {
     const disk = new MemoryDisk();
