@@ -82,7 +82,9 @@ function refuseOther(path: string): void {
 }
 
 function writeSynced(path: string, bytes: Uint8Array | string, mode: number): void {
-  const descriptor = openSync(path, 'w', mode);
+  // A rest of an earlier run would keep its own mode, and a link would lead elsewhere: the file is always a new one.
+  rmSync(path, { force: true });
+  const descriptor = openSync(path, 'wx', mode);
   try {
     writeFully(descriptor, typeof bytes === 'string' ? Buffer.from(bytes, 'utf8') : bytes);
     fsyncSync(descriptor);
