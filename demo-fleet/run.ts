@@ -90,7 +90,8 @@ async function run(options: RunOptions): Promise<number> {
     narrator.clear();
     tell(options, story, result, narrator.seconds);
     if (options.keep || story.staysOpen) await keep(result, folder, interruption.signal);
-    return exitCodeOf(result.verdicts);
+    // A story that only stays open has promised nothing that could be broken.
+    return story.staysOpen ? 0 : exitCodeOf(result.verdicts);
   } catch (error) {
     narrator.clear();
     if (error instanceof Interrupted) {
