@@ -21,13 +21,28 @@ export const mosquittoMissing: string | null = existsSync(MOSQUITTO)
   ? null
   : 'mosquitto is not installed (apt-get install mosquitto)';
 
-/** A port that was free a moment ago. */
+/** Ports below the system's own range, one stretch a test worker: nobody else is given one in the meantime. */
+const FIRST_PORT = 14_000;
+const PORTS_A_WORKER = 4000;
+const WORKERS = 4;
+let asked = process.pid * 37;
+
+/** A port on which nothing listens, and which neither the system nor another test worker gives away. */
 export async function freePort(): Promise<number> {
+  const worker = Number(process.env.VITEST_POOL_ID ?? 0) % WORKERS;
+  for (let tries = 0; tries < PORTS_A_WORKER; tries++) {
+    const port = FIRST_PORT + worker * PORTS_A_WORKER + (asked++ % PORTS_A_WORKER);
+    if (await canListen(port)) return port;
+  }
+  throw new Error(`no free port from ${FIRST_PORT} up`);
+}
+
+function canListen(port: number): Promise<boolean> {
   const server = createServer();
-  await new Promise<void>((resolve) => server.listen(0, '127.0.0.1', resolve));
-  const { port } = server.address() as AddressInfo;
-  await new Promise((resolve) => server.close(resolve));
-  return port;
+  return new Promise((resolve) => {
+    server.once('error', () => resolve(false));
+    server.listen(port, '127.0.0.1', () => server.close(() => resolve(true)));
+  });
 }
 
 /** aedes in this process; `port` to come back where an earlier one stood. */
