@@ -78,8 +78,10 @@ function offerFirst(gateway: Gateway, sealed: Uint8Array, path: string): void {
   if (gateway.engine.serving === null) throw new RuntimeError('bundle', outcome);
 }
 
+/** Also ends, by an error, when something fails where nobody waits for it: one line and a restart instead of a stack. */
 function untilToldToStop(): Promise<void> {
-  return new Promise((resolve) => {
+  return new Promise((resolve, reject) => {
     for (const signal of ['SIGINT', 'SIGTERM'] as const) process.once(signal, () => resolve());
+    process.once('uncaughtException', reject);
   });
 }

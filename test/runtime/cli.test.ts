@@ -183,3 +183,32 @@ test('a lock left by a process that is gone does not keep the next one out', asy
   unlock();
   expect(lockHolder(folder)).toBeNull();
 });
+
+test('a failure where nobody waits for it ends in one line, without a stack, and the lock is free again', async () => {
+  const preload = `import{existsSync}from'node:fs';const t=setInterval(()=>{if(existsSync(${JSON.stringify(at('now'))})){clearInterval(t);throw new Error('planted failure')}},20)`;
+  const args = ['run', ...site(), ...data(), ...url(), '--gateway', 'g1'];
+  const child = spawn(process.execPath, [
+    '--import',
+    `data:text/javascript,${encodeURIComponent(preload)}`,
+    COMMAND,
+    ...args,
+  ]);
+  let out = '';
+  let err = '';
+  child.stdout.on('data', (chunk) => {
+    out += chunk;
+  });
+  child.stderr.on('data', (chunk) => {
+    err += chunk;
+  });
+  const exited = new Promise<number | null>((resolve) => child.once('exit', (code) => resolve(code)));
+  try {
+    await until('waits for a bundle', () => out.includes('no bundle yet'), PATIENCE_MS);
+    writeFileSync(at('now'), '');
+    expect(await exited).toBe(1);
+  } finally {
+    child.kill('SIGKILL');
+  }
+  expect(err).toBe('stillwell-gateway: planted failure\n');
+  expect(existsSync(at('data/lock'))).toBe(false);
+}, 120_000);
