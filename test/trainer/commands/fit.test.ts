@@ -2,33 +2,18 @@
 import { existsSync, readdirSync, readFileSync, writeFileSync } from 'node:fs';
 import { join } from 'node:path';
 import type { Command } from 'commander';
-import { afterEach, beforeEach, describe, expect, it, vi } from 'vitest';
+import { describe, expect, it } from 'vitest';
 import { decodeBundle, formatSite } from '../../../protocol/index.ts';
 import { fitCommand } from '../../../trainer/commands/fit.ts';
 import { hindcastCommand } from '../../../trainer/commands/hindcast.ts';
+import { hearing } from '../../support/command.ts';
 import { testFolder } from '../../support/folder.ts';
 import { hourlySite, wanderingDays } from '../../support/history.ts';
 
 const names = ['level', 'flow'];
 const TICKS = 900;
 
-let said = '';
-beforeEach(() => {
-  said = '';
-  vi.spyOn(process.stdout, 'write').mockImplementation((text) => {
-    said += String(text);
-    return true;
-  });
-});
-afterEach(() => {
-  vi.restoreAllMocks();
-});
-
-async function run(command: Command, ...args: string[]): Promise<string> {
-  said = '';
-  await command.exitOverride().parseAsync(args, { from: 'user' });
-  return said;
-}
+const run = hearing();
 
 function plant(horizon = 12): { at: (name: string) => string; site: string; history: string } {
   const folder = testFolder();

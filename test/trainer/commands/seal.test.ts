@@ -2,36 +2,20 @@
 import { readFileSync, statSync, writeFileSync } from 'node:fs';
 import { join } from 'node:path';
 import { decodeBundle, openSealed, publicHalf } from '@stillwell/protocol';
-import type { Command } from 'commander';
-import { afterEach, beforeEach, describe, expect, test, vi } from 'vitest';
+import { describe, expect, test } from 'vitest';
 import { encodeBundle } from '../../../protocol/index.ts';
 import { keysCommand } from '../../../trainer/commands/keys.ts';
 import { sealCommand } from '../../../trainer/commands/seal.ts';
 import { showCommand } from '../../../trainer/commands/show.ts';
 import { readKey } from '../../../trainer/key-file.ts';
+import { hearing } from '../../support/command.ts';
 import { testFolder } from '../../support/folder.ts';
 import { SegmentMaker, sealableBundle } from '../../support/segment-maker.ts';
 
 const good = sealableBundle({ site: 'pump-7', seed: 1 });
 const dull = encodeBundle({ ...good.bundle, judge: { ...good.bundle.judge, hasSkill: false } });
 
-let said = '';
-beforeEach(() => {
-  said = '';
-  vi.spyOn(process.stdout, 'write').mockImplementation((text) => {
-    said += String(text);
-    return true;
-  });
-});
-afterEach(() => {
-  vi.restoreAllMocks();
-});
-
-async function run(command: Command, ...args: string[]): Promise<string> {
-  said = '';
-  await command.exitOverride().parseAsync(args, { from: 'user' });
-  return said;
-}
+const run = hearing();
 
 async function folderWithKey(): Promise<{ folder: string; at: (name: string) => string }> {
   const folder = testFolder();
