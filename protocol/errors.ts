@@ -12,6 +12,7 @@ export type ProtocolErrorCode =
   | 'format'
   | 'site-file'
   | 'payload'
+  | 'plan'
   | 'topic'
   | 'tensor'
   | 'segment';

@@ -23,6 +23,7 @@ export * from './limits.ts';
 export type { MessageHead, Quality } from './message.ts';
 export { isName, NAME_RULE, toName } from './name.ts';
 export { nearestName } from './nearest.ts';
+export * from './plan.ts';
 export { isPointer, pointerTokens, resolvePointer } from './pointer.ts';
 export * from './reading.ts';
 export * from './receipt.ts';

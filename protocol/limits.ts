@@ -52,3 +52,12 @@ export const MAX_TOPIC_BYTES = 65_535;
 
 /** Receipts in one message: a window of segments is a few; a catch-up after an outage is split. */
 export const MAX_RECEIPT_SEGMENTS = 1024;
+
+/** Values in one plan: the longest horizon at four values a tick. */
+export const MAX_PLAN_VALUES = 4096;
+
+/** From a plan's start to its end, or one horizon where that is longer: a year's schedule. */
+export const MAX_PLAN_SPAN_MS = 366 * 86_400_000;
+
+/** From now to a plan's start, or one horizon where that is longer: beyond it the year or the unit is mistaken. */
+export const MAX_PLAN_AHEAD_MS = 31 * 86_400_000;

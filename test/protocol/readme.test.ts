@@ -9,6 +9,7 @@ import { forecastsSchema } from '../../protocol/forecasts.ts';
 import { healthSchema } from '../../protocol/health.ts';
 import { KEY_ID_BYTES, SIGNATURE_BYTES } from '../../protocol/keys.ts';
 import * as limits from '../../protocol/limits.ts';
+import { planSchema } from '../../protocol/plan.ts';
 import { receiptSchema } from '../../protocol/receipt.ts';
 import { parseSite } from '../../protocol/site.ts';
 import { PAYLOAD_KEYS, siteFileSchema } from '../../protocol/site-schema.ts';
@@ -74,6 +75,7 @@ describe('tables of fields', () => {
     ['forecasts', tableOf(readme, 'forecasts'), forecastsSchema],
     ['health', [...head, ...tableOf(readme, 'health')], healthSchema],
     ['receipt', tableOf(readme, 'receipt'), receiptSchema],
+    ['plan', tableOf(readme, 'plan'), planSchema],
   ])('%s', (_, rows, schema) => expect(disagreements(rows, schema)).toEqual([]));
 
   test('limits of channels may be null, and the table says so', () => {
