@@ -7,14 +7,14 @@ import {
   createState,
   type FilterState,
   forecastPath,
-  type LinearModel,
+  type Model,
   modelFromBundle,
   update,
 } from '@stillwell/runtime/filter';
 
 /** A filter that follows the readings and forecasts without bounds. */
 export class Shadow {
-  private readonly model: LinearModel;
+  private readonly model: Model;
   private readonly state: FilterState;
   private readonly median: Float64Array;
 

@@ -2,7 +2,7 @@
  * Whether the fields of a bundle agree with each other: shapes of every tensor, order of channels and lags, moduli below
  * one. A bundle that passes computes without reading past an array and without growing for ever.
  */
-import type { Bundle, BundleChannel } from './bundle.ts';
+import type { Bundle, BundleChannel, LinearTensors } from './bundle.ts';
 import { toHex } from './digest.ts';
 import { ProtocolError } from './errors.ts';
 import { bundleSchemaHash } from './schema-hash.ts';
@@ -42,8 +42,13 @@ const checkChannels = (channels: readonly BundleChannel[]): number => {
   return signals;
 };
 
-const checkLinear = (bundle: Bundle, signals: number): void => {
-  const { decays, resonators, lags, featureExponents, bottleneck, readout, horizonBasis } = bundle.linear;
+/** Sections each kind must have, and may not have. */
+const checkSections = (bundle: Bundle): void => {
+  if (bundle.linear === undefined) refuse('linear', `expected the tensors of kind "${bundle.kind}", got none`);
+};
+
+const checkLinear = (bundle: Bundle, linear: LinearTensors, signals: number): void => {
+  const { decays, resonators, lags, featureExponents, bottleneck, readout, horizonBasis } = linear;
   for (const [i, [re, im]] of resonators.entries()) {
     const modulus = Math.sqrt(re * re + im * im);
     if (!(modulus < 1)) refuse(`linear.resonators[${i}]`, `expected a modulus below 1, got ${modulus}`);
@@ -116,7 +121,8 @@ export const checkBundle = (bundle: Bundle): void => {
   const expected = toHex(bundleSchemaHash(bundle));
   const got = toHex(bundle.schema);
   if (expected !== got) refuse('schema', `expected ${expected} for these channels and this tick, got ${got}`);
-  checkLinear(bundle, signals);
+  checkSections(bundle);
+  if (bundle.linear !== undefined) checkLinear(bundle, bundle.linear, signals);
   checkSeasonal(bundle, signals);
   checkRadius(bundle, signals);
   checkJudge(bundle, signals);

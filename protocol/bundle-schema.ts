@@ -3,7 +3,7 @@
  */
 import { z } from 'zod';
 import { binary } from './binary.ts';
-import type { Bundle } from './bundle.ts';
+import { BUNDLE_KINDS, type Bundle } from './bundle.ts';
 import { type ChannelColumns, channelColumnsSchema } from './channel-columns.ts';
 import { MAX_HORIZON, MAX_LAG_TICKS, MAX_TICK_MS, MIN_TICK_MS } from './limits.ts';
 import { isName, NAME_RULE } from './name.ts';
@@ -92,7 +92,7 @@ export type BundleDocument = Omit<Bundle, 'channels'> & { readonly channels: Cha
 export const bundleSchema = z.strictObject({
   format: z.int(),
   arithmetic: z.int(),
-  kind: z.literal('linear'),
+  kind: z.enum(BUNDLE_KINDS),
   site: name,
   equipmentClass: name,
   schema: digest,
@@ -100,7 +100,7 @@ export const bundleSchema = z.strictObject({
   tickMs: z.int().min(MIN_TICK_MS).max(MAX_TICK_MS),
   horizon: z.int().min(1).max(MAX_HORIZON),
   channels: channelColumnsSchema,
-  linear: linearSchema,
+  linear: linearSchema.optional(),
   seasonal: seasonalSchema,
   bounds: boundsSchema,
   guard: guardSchema,

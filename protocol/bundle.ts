@@ -68,11 +68,17 @@ export interface JudgeTable {
   readonly override: string | null;
 }
 
+/** Kinds of model; each has sections of its own. */
+export const BUNDLE_KINDS = ['linear'] as const;
+
+/** One of them. */
+export type BundleKind = (typeof BUNDLE_KINDS)[number];
+
 /** A model, how far it may be trusted, and where it came from. */
 export interface Bundle {
   readonly format: number;
   readonly arithmetic: number;
-  readonly kind: 'linear';
+  readonly kind: BundleKind;
   readonly site: string;
   readonly equipmentClass: string;
   /** schemaHash of the site file: signals, order, units, tick. 32 bytes. */
@@ -82,7 +88,8 @@ export interface Bundle {
   readonly tickMs: number;
   readonly horizon: number;
   readonly channels: readonly BundleChannel[];
-  readonly linear: LinearTensors;
+  /** Absent in kinds without a feature bank. */
+  readonly linear?: LinearTensors | undefined;
   readonly seasonal: SeasonalTable;
   readonly bounds: {
     readonly coverage: number;

@@ -10,7 +10,7 @@ import {
   type FilterState,
   forecastPath,
   intervalOf,
-  type LinearModel,
+  type Model,
   predictNext,
   restoreBounds,
   restoreState,
@@ -23,7 +23,7 @@ import {
 /** A bundle that passed every check. */
 export interface CheckedBundle {
   readonly bundle: Bundle;
-  readonly model: LinearModel;
+  readonly model: Model;
   /** SHA-256 of the document. */
   readonly digest: Uint8Array;
   readonly epoch: number;
@@ -34,7 +34,7 @@ export interface CheckedBundle {
 export class Serving {
   /** Replaced when the same document comes under a higher sequence. */
   checked: CheckedBundle;
-  readonly model: LinearModel;
+  readonly model: Model;
   state: FilterState;
   bounds: Bounds;
   /** (nc) the tick's readings as lattice indices, NaN missing. */

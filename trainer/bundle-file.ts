@@ -12,7 +12,7 @@ import {
   ProtocolError,
   readEnvelope,
 } from '@stillwell/protocol';
-import { checkModel, type LinearModel, modelFromBundle, runProbe } from '@stillwell/runtime/filter';
+import { checkModel, type Model, modelFromBundle, runProbe } from '@stillwell/runtime/filter';
 import { TrainError } from './errors.ts';
 import { readBytesFile } from './key-file.ts';
 
@@ -26,7 +26,7 @@ export interface BundleFile {
 export interface OpenDocument {
   readonly document: Uint8Array;
   readonly bundle: Bundle;
-  readonly model: LinearModel;
+  readonly model: Model;
   readonly digest: Uint8Array;
 }
 

@@ -22,8 +22,7 @@ export function bundleFacts({ bundle, document, digest, model }: OpenDocument) {
     coverage: bundle.bounds.coverage,
     warmupTicks: bundle.warmupTicks,
     order: model.order,
-    basisCount: model.basisCount,
-    featuresPerChannel: model.featureCount,
+    ...('featureCount' in model ? { basisCount: model.basisCount, featuresPerChannel: model.featureCount } : {}),
     channels: bundle.channels.map(({ name, role, unit, aggregate, lattice, clip, limits, residualScale, scale }) => ({
       name,
       role,
@@ -164,9 +163,9 @@ function judgeRows(bundle: Bundle) {
 function partSizes(bundle: Bundle): Record<string, number> {
   const { linear } = bundle;
   const named = {
-    bottleneck: linear.bottleneck,
-    'read-out': linear.readout,
-    'horizon shapes': linear.horizonBasis,
+    ...(linear === undefined
+      ? {}
+      : { bottleneck: linear.bottleneck, 'read-out': linear.readout, 'horizon shapes': linear.horizonBasis }),
     bounds: bundle.bounds,
     seasonal: bundle.seasonal,
     channels: bundle.channels,

@@ -3,7 +3,7 @@
  * The same series, site, options and seed give the same bytes; nothing here reads a clock into the document.
  */
 import { type Bundle, decodeBundle, encodeBundle, MAX_SIGNATURES } from '@stillwell/protocol';
-import { type LinearModel, modelFromBundle } from '@stillwell/runtime/filter';
+import { type Model, modelFromBundle } from '@stillwell/runtime/filter';
 import { type Composition, composeBundle, judgeTable, placeholderJudge } from './compose.ts';
 import { TrainError } from './errors.ts';
 import type { FitInput, FitOptions } from './fit-options.ts';
@@ -46,7 +46,7 @@ export interface FitResult {
   readonly document: Uint8Array;
   readonly bundle: Bundle;
   /** The model as the gateway will compute it, read back from the document. */
-  readonly model: LinearModel;
+  readonly model: Model;
   readonly learn: TickSpan;
   readonly calibrate: TickSpan;
   readonly judged: TickSpan;
@@ -113,7 +113,7 @@ interface Small {
   readonly bundle: Bundle;
   readonly parts: Composition;
   /** The same size without rounding, with the same calibration. */
-  readonly float: LinearModel;
+  readonly float: Model;
 }
 
 function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Prepared, taught: Taught): Small {

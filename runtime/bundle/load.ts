@@ -13,7 +13,7 @@ import {
   type Site,
   type TrustedKeys,
 } from '@stillwell/protocol';
-import { checkModel, type LinearModel, modelFromBundle, runProbe } from '@stillwell/runtime/filter';
+import { checkModel, type Model, modelFromBundle, runProbe } from '@stillwell/runtime/filter';
 import { RuntimeError } from '../errors.ts';
 import type { CheckedBundle } from '../serving.ts';
 import { type HighWater, standing } from './high-water.ts';
@@ -93,7 +93,7 @@ function checkScope(bundle: Bundle, site: Site): { ok: false; code: RefusalCode;
 }
 
 /** The bundle's own short run must come out the same to the last bit on this machine. */
-function checkProbe(bundle: Bundle, model: LinearModel): string | null {
+function checkProbe(bundle: Bundle, model: Model): string | null {
   const { seed, ticks, digest } = bundle.probe;
   const got = createHash('sha256')
     .update(runProbe(model, seed, ticks).outputs)

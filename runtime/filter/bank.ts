@@ -13,7 +13,7 @@
  * Memory of one channel: decays first, then resonators as re, im, re, im. The ring holds z(t − 1) … z(t − L) while z(t)
  * itself stands in the state, since the lag-L feature of tick t needs a value L ticks old.
  */
-import type { LinearModel } from './model.ts';
+import type { BankModel } from './model.ts';
 
 /** Largest size of a scaled feature; features have a standard deviation near one in training. */
 export const FEATURE_LIMIT = 12;
@@ -41,7 +41,7 @@ export interface BankConstants {
  * source  g = (1 − |c|)/(1 − c) = (1 − |c|)(1 − c̄)/|1 − c|²; |c| by √ alone
  * cost    O(decays + resonators); once per state
  */
-export function bankConstants(model: LinearModel): BankConstants {
+export function bankConstants(model: BankModel): BankConstants {
   const decayCount = model.decays.length;
   const resonatorCount = model.resonatorRe.length;
   const decayGain = new Float64Array(decayCount);
@@ -104,7 +104,7 @@ export function settleChannel(
  * cost    O(memoryCount); allocates nothing
  */
 export function advanceChannel(
-  model: LinearModel,
+  model: BankModel,
   bank: BankConstants,
   memory: Float64Array,
   values: Float64Array,
@@ -131,7 +131,7 @@ export function advanceChannel(
  * cost    O(F); allocates nothing
  */
 export function writeFeatures(
-  model: LinearModel,
+  model: BankModel,
   bank: BankConstants,
   memory: Float64Array,
   ring: Float64Array,

@@ -10,7 +10,7 @@
  * answer, is short by a factor of two and more.
  */
 import { type Bounds, radiiOf } from './interval.ts';
-import type { LinearModel } from './model.ts';
+import type { CommonModel } from './model.ts';
 import { normalCdf, normalDensity } from './normal-table.ts';
 import type { FilterState } from './state.ts';
 
@@ -34,7 +34,7 @@ const LEAST_CHANCE = 1e-9;
  * cost    O(H); allocates only its answer
  */
 export function crossing(
-  model: LinearModel,
+  model: CommonModel,
   bounds: Bounds,
   state: FilterState,
   median: Float64Array,

@@ -1,44 +1,36 @@
 /**
- * Forecasts from the state: z(t+h) = z(t) + Σ_k B[h−1, k] coefficient k. A signal without readings for longer than F =
+ * Forecasts from the state: the path of the kind's kernel, faded and clipped. A signal without readings for longer than F =
  * fadeTicks fades to its seasonal mean: with `age` the ticks since its last reading, the distance to that mean keeps its
  * size up to age F and falls linearly to nothing at age 2F, because iterating a fitted recursion without readings need
  * not be stable. Step 1 of the path is the number that stands in for a missing reading at the next tick.
  */
-import { multiply } from './dense.ts';
-import type { LinearModel } from './model.ts';
+import { kernelOf } from './kernels.ts';
+import type { CommonModel, Model } from './model.ts';
 import { type FilterState, fadeTicks } from './state.ts';
 
 /**
- * Forecasts of one signal for steps 1 … `steps`, faded and clipped.
+ * Fades and clips a path of every signal, in place.
  *
- * shapes  out, `steps` numbers from `at`
+ * shapes  paths (ny × steps)
  * units   standardised
- * cost    O(steps · r); allocates nothing
+ * cost    O(ny · steps); allocates nothing
  */
-export function stepsAhead(
-  model: LinearModel,
-  state: FilterState,
-  signal: number,
-  steps: number,
-  out: Float64Array,
-  at: number,
-): void {
-  const r = model.basisCount;
-  multiply(model.horizonBasis, steps, r, state.coefficients, signal * r, out, at);
-  const now = state.value[signal];
-  for (let h = 0; h < steps; h++) out[at + h] = now + out[at + h];
-  if (state.age[signal] + steps > fadeTicks(model)) fade(model, state, signal, steps, out, at);
-  const low = state.low[signal];
-  const high = state.high[signal];
-  for (let h = 0; h < steps; h++) {
-    if (out[at + h] < low) out[at + h] = low;
-    else if (out[at + h] > high) out[at + h] = high;
+function finish(model: Model, state: FilterState, steps: number, paths: Float64Array): void {
+  for (let i = 0; i < model.signalCount; i++) {
+    const at = i * steps;
+    if (state.age[i] + steps > fadeTicks(model)) fade(model, state, i, steps, paths, at);
+    const low = state.low[i];
+    const high = state.high[i];
+    for (let k = at; k < at + steps; k++) {
+      if (paths[k] < low) paths[k] = low;
+      else if (paths[k] > high) paths[k] = high;
+    }
   }
 }
 
 /** Leaves, of the distance to the seasonal mean, the share that belongs to the age of each step; see the file head. */
 function fade(
-  model: LinearModel,
+  model: CommonModel,
   state: FilterState,
   signal: number,
   steps: number,
@@ -59,14 +51,14 @@ function fade(
 }
 
 /** Place in the seasonal table of a signal at a tick, by the tick's phase in the period. */
-function seasonalCell(model: LinearModel, signal: number, tick: number): number {
+function seasonalCell(model: CommonModel, signal: number, tick: number): number {
   const { seasonalPeriod: period, seasonalBins: bins } = model;
   if (period === 0) return signal * bins;
   return signal * bins + Math.floor(((tick % period) * bins) / period);
 }
 
 /** Turns standardised numbers of one channel into its unit, in place, inside the clips to the last bit. */
-function toUnits(model: LinearModel, channel: number, values: Float64Array, at: number, count: number): void {
+function toUnits(model: CommonModel, channel: number, values: Float64Array, at: number, count: number): void {
   const mean = model.mean[channel];
   const scale = model.scale[channel];
   const low = model.clipLow[channel];
@@ -77,43 +69,49 @@ function toUnits(model: LinearModel, channel: number, values: Float64Array, at: 
 /**
  * Forecast path of every signal.
  *
- * shapes  median (ny × H), row-major: step h at i·H + h − 1
- * units   of the signal
- * cost    O(ny · H · r); allocates nothing
+ * shapes  median (ny × H), row-major: step h at i·H + h − 1; plan (nu × H), NaN where an input is not planned
+ * units   median of the signal; plan standardised
+ * cost    that of the kind's kernel; allocates nothing
  */
-export function forecastPath(model: LinearModel, state: FilterState, median: Float64Array): void {
+export function forecastPath(
+  model: Model,
+  state: FilterState,
+  median: Float64Array,
+  plan: Float64Array | null = null,
+): void {
   const H = model.horizon;
-  for (let i = 0; i < model.signalCount; i++) {
-    stepsAhead(model, state, i, H, median, i * H);
-    toUnits(model, i, median, i * H, H);
-  }
+  kernelOf(model).paths(model, state.core, state, H, plan, median);
+  finish(model, state, H, median);
+  for (let i = 0; i < model.signalCount; i++) toUnits(model, i, median, i * H, H);
 }
 
 /**
  * One-step forecast of every channel: signals by the model, inputs by their last value. Before the first tick, the mean.
+ * Never by a plan: the desk repeats these numbers from the readings alone.
  *
  * shapes  out (nc)
  * units   standardised
- * cost    O(ny · r); allocates nothing
+ * cost    that of the kind's kernel; allocates nothing
  */
-export function predictStandardised(model: LinearModel, state: FilterState, out: Float64Array): void {
+export function predictStandardised(model: Model, state: FilterState, out: Float64Array): void {
   if (state.tick < 0) {
     out.fill(0);
     return;
   }
-  for (let i = 0; i < model.signalCount; i++) stepsAhead(model, state, i, 1, out, i);
+  kernelOf(model).paths(model, state.core, state, 1, null, out);
+  finish(model, state, 1, out);
   for (let c = model.signalCount; c < model.channelCount; c++) out[c] = state.value[c];
 }
 
 /**
- * Forecast of the next tick for every channel: signals by the model, the same number as step 1 of the path; inputs by
- * their last value. What a missing reading will be replaced by.
+ * Forecast of the next tick for every channel: signals by the model, the same number as step 1 of the path without a plan;
+ * inputs by their last value. What a missing reading will be replaced by.
  *
  * shapes  out (nc)
  * units   of the channel
- * cost    O(ny · r); allocates nothing
+ * cost    that of the kind's kernel; allocates nothing
  */
-export function predictNext(model: LinearModel, state: FilterState, out: Float64Array): void {
+export function predictNext(model: Model, state: FilterState, out: Float64Array): void {
   predictStandardised(model, state, out);
   for (let c = 0; c < model.channelCount; c++) toUnits(model, c, out, c, 1);
 }

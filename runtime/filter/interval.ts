@@ -14,7 +14,7 @@
  * Not a guarantee for any single step: coverage holds over time.
  */
 import { FilterError } from './errors.ts';
-import type { LinearModel } from './model.ts';
+import type { CommonModel } from './model.ts';
 import { normalQuantile } from './normal-table.ts';
 import { type FilterState, MISSING } from './state.ts';
 
@@ -54,7 +54,7 @@ export interface Bounds {
  *
  * shapes  issued takes ny · H(H + 1)/2 float32 numbers: 59 KB at 8 signals and 60 steps, 149 KB at 96
  */
-export function createBounds(model: LinearModel): Bounds {
+export function createBounds(model: CommonModel): Bounds {
   const { signalCount: ny, horizon: H } = model;
   const ceiling = new Float64Array(ny);
   const floor = new Float64Array(ny * H);
@@ -91,7 +91,7 @@ export function createBounds(model: LinearModel): Bounds {
  * throws  FilterError 'tick' when called twice for a tick or before the first
  * cost    O(ny · H); allocates nothing
  */
-export function trackBounds(model: LinearModel, bounds: Bounds, state: FilterState, medianPath: Float64Array): void {
+export function trackBounds(model: CommonModel, bounds: Bounds, state: FilterState, medianPath: Float64Array): void {
   const tick = state.tick;
   if (tick < 0 || tick === bounds.tick) {
     throw new FilterError('tick', `bounds: expected a tick after ${bounds.tick}, got ${tick}`, {
@@ -116,7 +116,7 @@ export function trackBounds(model: LinearModel, bounds: Bounds, state: FilterSta
 
 /** Moves one radius by the error of the forecast that stands in `slot`, if one does. */
 function score(
-  model: LinearModel,
+  model: CommonModel,
   bounds: Bounds,
   state: FilterState,
   signal: number,
@@ -140,7 +140,7 @@ function score(
  * cost    O(H); allocates nothing
  */
 export function radiiOf(
-  model: LinearModel,
+  model: CommonModel,
   bounds: Bounds,
   state: FilterState,
   signal: number,
@@ -173,7 +173,7 @@ export function radiiOf(
  * cost    O(ny · H); allocates nothing
  */
 export function intervalOf(
-  model: LinearModel,
+  model: CommonModel,
   bounds: Bounds,
   state: FilterState,
   median: Float64Array,

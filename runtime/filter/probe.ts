@@ -15,7 +15,7 @@
  */
 import { forecastPath, predictNext } from './forecast.ts';
 import { createBounds, intervalOf, trackBounds } from './interval.ts';
-import type { LinearModel } from './model.ts';
+import type { Model } from './model.ts';
 import { createState } from './state.ts';
 import { update } from './update.ts';
 
@@ -32,7 +32,7 @@ export interface ProbeRun {
  * throws  FilterError from the filter, on a model that checkModel would refuse
  * source  Marsaglia (2003), Xorshift RNGs, triple (13, 17, 5)
  */
-export function runProbe(model: LinearModel, seed: number, ticks: number): ProbeRun {
+export function runProbe(model: Model, seed: number, ticks: number): ProbeRun {
   const { channelCount: nc, signalCount: ny, horizon: H } = model;
   const state = createState(model);
   const bounds = createBounds(model);
@@ -69,7 +69,7 @@ export function runProbe(model: LinearModel, seed: number, ticks: number): Probe
 }
 
 /** Fills the readings of tick n, ticks in order, as the file head states. */
-function readingGenerator(model: LinearModel, seed: number): (n: number, out: Float64Array) => void {
+function readingGenerator(model: Model, seed: number): (n: number, out: Float64Array) => void {
   let x = seed | 0 || 2463534242 | 0;
   const wander = new Float64Array(model.channelCount);
   return (n, out) => {

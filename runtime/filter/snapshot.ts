@@ -1,15 +1,16 @@
 /**
  * Snapshots of the state and of the bounds: exact float64 and float32 bits, little-endian, versioned, checked by CRC-32.
- * Equal states give equal bytes (rings are written oldest first), so two machines can prove to each other that they stand
+ * Equal states give equal bytes (kernels write their memories in one order), so two machines can prove to each other that they stand
  * at the same point by comparing checksums. A state's snapshot holds only what moves one-step predictions.
  *
  * | offset | size | meaning |
  * | 0  | 4 | magic, "SWfs" (state) or "SWfb" (bounds) |
  * | 4  | 2 | snapshot version, 1 |
  * | 6  | 2 | arithmetic version |
- * | 8  | 4 | CRC-32 of the model's shapes, poles, lags and scaling: another bank refuses the snapshot |
+ * | 8  | 4 | CRC-32 of the model's shapes, poles, lags and scaling: another model refuses the snapshot |
  * | 12 | 8 | tick, float64 |
- * | 20 | … | state: per channel started u8, passed u16, age u32, then float64 value, memories, ring oldest first |
+ * | 20 | … | state: per channel started u8, passed u16, age u32, then float64 value and what the kind keeps of the channel |
+ * |    |   | (linear: memories, ring oldest first), and after the channels what it keeps of no channel alone |
  * |    |   | bounds: warmed u32, radius float64 (ny × H), forecasts under way float32 (ny · H(H + 1)/2) |
  * | end − 4 | 4 | CRC-32 of all before |
  */
@@ -17,34 +18,43 @@ import { ARITHMETIC } from '@stillwell/protocol';
 import { crc32 } from './checksum.ts';
 import { FilterError } from './errors.ts';
 import { type Bounds, createBounds } from './interval.ts';
-import type { LinearModel } from './model.ts';
-import { createState, type FilterState, fadeTicks, refresh } from './state.ts';
+import { kernelOf } from './kernels.ts';
+import type { Model } from './model.ts';
+import { createState, type FilterState, fadeTicks } from './state.ts';
 
 const VERSION = 1;
 const HEAD = 20;
 const STATE_MAGIC = 0x53576673;
 const BOUNDS_MAGIC = 0x53576662;
 
+/** Bytes of a state's snapshot. */
+function stateSize(model: Model): number {
+  const { perChannel, shared } = kernelOf(model).memoryLayout(model);
+  return HEAD + model.channelCount * (7 + 8 * (1 + perChannel)) + 8 * shared + 4;
+}
+
 /**
  * The state's snapshot.
  *
- * shapes  24 + nc · (7 + 8 · (1 + memoryCount + ringLength)) bytes
+ * shapes  24 + nc · (7 + 8 · (1 + numbers of a channel)) + 8 · shared numbers bytes; linear: memoryCount + ringLength a channel
  */
-export function saveState(model: LinearModel, state: FilterState): Uint8Array {
-  const { memoryCount, ringLength } = state.bank;
-  const bytes = new Uint8Array(HEAD + model.channelCount * (7 + 8 * (1 + memoryCount + ringLength)) + 4);
+export function saveState(model: Model, state: FilterState): Uint8Array {
+  const kernel = kernelOf(model);
+  const { perChannel, shared } = kernel.memoryLayout(model);
+  const bytes = new Uint8Array(stateSize(model));
   const view = writeHead(bytes, STATE_MAGIC, model, state.tick);
+  const numbers = new Float64Array(Math.max(perChannel, shared));
   let at = HEAD;
   for (let c = 0; c < model.channelCount; c++) {
     view.setUint8(at, state.started[c]);
     view.setUint16(at + 1, state.passed[c], true);
     view.setUint32(at + 3, state.age[c], true);
     at = putFloats(view, at + 7, state.value, c, c + 1);
-    at = putFloats(view, at, state.memory, c * memoryCount, (c + 1) * memoryCount);
-    const ringFrom = c * ringLength;
-    at = putFloats(view, at, state.ring, ringFrom + state.ringAt, ringFrom + ringLength);
-    at = putFloats(view, at, state.ring, ringFrom, ringFrom + state.ringAt);
+    kernel.copyOut(model, state.core, c, numbers, 0);
+    at = putFloats(view, at, numbers, 0, perChannel);
   }
+  kernel.copyOut(model, state.core, -1, numbers, 0);
+  at = putFloats(view, at, numbers, 0, shared);
   view.setUint32(at, crc32(bytes, 0, at), true);
   return bytes;
 }
@@ -55,13 +65,16 @@ export function saveState(model: LinearModel, state: FilterState): Uint8Array {
  *
  * throws  FilterError 'snapshot' if the bytes are damaged, of another version, or of another model
  */
-export function restoreState(model: LinearModel, bytes: Uint8Array): FilterState {
+export function restoreState(model: Model, bytes: Uint8Array): FilterState {
+  const kernel = kernelOf(model);
+  const { perChannel, shared } = kernel.memoryLayout(model);
   const state = createState(model);
-  const { memoryCount, ringLength } = state.bank;
-  const size = HEAD + model.channelCount * (7 + 8 * (1 + memoryCount + ringLength)) + 4;
-  const view = readHead(bytes, STATE_MAGIC, model, size, 'state');
+  const view = readHead(bytes, STATE_MAGIC, model, stateSize(model), 'state');
+  const numbers = new Float64Array(Math.max(perChannel, shared));
+  const allFinite = (count: number): boolean => numbers.subarray(0, count).every(Number.isFinite);
   state.tick = view.getFloat64(12, true);
   let at = HEAD;
+  let areFinite = true;
   for (let c = 0; c < model.channelCount; c++) {
     state.started[c] = view.getUint8(at);
     state.passed[c] = view.getUint16(at + 1, true);
@@ -70,13 +83,15 @@ export function restoreState(model: LinearModel, bytes: Uint8Array): FilterState
       state.started[c] <= 1 && state.passed[c] <= model.rejectMaxTicks && state.age[c] <= 2 * fadeTicks(model);
     if (!isInRange) throw refusal('state', `channel ${c}`, 'counters in range', 'one beyond it');
     at = getFloats(view, at + 7, state.value, c, c + 1);
-    at = getFloats(view, at, state.memory, c * memoryCount, (c + 1) * memoryCount);
-    at = getFloats(view, at, state.ring, c * ringLength, (c + 1) * ringLength);
+    at = getFloats(view, at, numbers, 0, perChannel);
+    areFinite &&= Number.isFinite(state.value[c]) && allFinite(perChannel);
+    kernel.copyIn(model, state.core, c, numbers, 0);
   }
-  for (const part of [state.value, state.memory, state.ring]) {
-    if (!part.every(Number.isFinite)) throw refusal('state', 'memories', 'finite numbers', 'NaN or infinity');
-  }
-  if (state.tick >= 0) refresh(model, state);
+  getFloats(view, at, numbers, 0, shared);
+  areFinite &&= allFinite(shared);
+  if (!areFinite) throw refusal('state', 'memories', 'finite numbers', 'NaN or infinity');
+  kernel.copyIn(model, state.core, -1, numbers, 0);
+  if (state.tick >= 0) kernel.refresh(model, state.core, state);
   return state;
 }
 
@@ -85,7 +100,7 @@ export function restoreState(model: LinearModel, bytes: Uint8Array): FilterState
  *
  * shapes  28 + 8 · ny · H + 2 · ny · H(H + 1) bytes
  */
-export function saveBounds(model: LinearModel, bounds: Bounds): Uint8Array {
+export function saveBounds(model: Model, bounds: Bounds): Uint8Array {
   const bytes = new Uint8Array(boundsSize(bounds));
   const view = writeHead(bytes, BOUNDS_MAGIC, model, bounds.tick);
   view.setUint32(HEAD, bounds.warmed, true);
@@ -100,7 +115,7 @@ export function saveBounds(model: LinearModel, bounds: Bounds): Uint8Array {
  *
  * throws  FilterError 'snapshot' if the bytes are damaged, of another version, or of another model
  */
-export function restoreBounds(model: LinearModel, bytes: Uint8Array): Bounds {
+export function restoreBounds(model: Model, bytes: Uint8Array): Bounds {
   const bounds = createBounds(model);
   const view = readHead(bytes, BOUNDS_MAGIC, model, boundsSize(bounds), 'bounds');
   bounds.tick = view.getFloat64(12, true);
@@ -119,7 +134,7 @@ function boundsSize(bounds: Bounds): number {
   return HEAD + 4 + 8 * bounds.radius.length + 4 * bounds.issued.length + 4;
 }
 
-function writeHead(bytes: Uint8Array, magic: number, model: LinearModel, tick: number): DataView {
+function writeHead(bytes: Uint8Array, magic: number, model: Model, tick: number): DataView {
   const view = new DataView(bytes.buffer, bytes.byteOffset, bytes.byteLength);
   view.setUint32(0, magic, false);
   view.setUint16(4, VERSION, true);
@@ -130,7 +145,7 @@ function writeHead(bytes: Uint8Array, magic: number, model: LinearModel, tick: n
 }
 
 /** Checks everything about a snapshot but its contents, cheapest first. */
-function readHead(bytes: Uint8Array, magic: number, model: LinearModel, size: number, what: string): DataView {
+function readHead(bytes: Uint8Array, magic: number, model: Model, size: number, what: string): DataView {
   const view = new DataView(bytes.buffer, bytes.byteOffset, bytes.byteLength);
   if (bytes.length < HEAD + 4) throw refusal(what, 'length', `${size} bytes`, `${bytes.length} bytes`);
   if (view.getUint32(0, false) !== magic) throw refusal(what, 'magic', `a ${what} snapshot`, 'other bytes');
@@ -149,13 +164,10 @@ function readHead(bytes: Uint8Array, magic: number, model: LinearModel, size: nu
 }
 
 /** CRC-32 over what gives a snapshot's numbers their meaning. */
-function fingerprint(model: LinearModel): number {
+function fingerprint(model: Model): number {
   const parts = [
     Float64Array.of(model.channelCount, model.signalCount, model.horizon, model.rejectMaxTicks, model.tickMs),
-    model.decays,
-    model.resonatorRe,
-    model.resonatorIm,
-    Float64Array.from(model.lags),
+    ...kernelOf(model).fingerprint(model),
     model.mean,
     model.scale,
   ];

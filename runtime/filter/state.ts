@@ -1,10 +1,11 @@
 /**
- * What the filter remembers between ticks. The memories that move one-step predictions (folded value, means, resonators,
- * ring, age of the last reading) are the state proper and are all that a snapshot holds; the rest is worked out from them.
+ * What the filter remembers between ticks. The memories that move one-step predictions (folded value, age of the last
+ * reading, and what the kind keeps in its core) are the state proper and are all that a snapshot holds; the rest is worked
+ * out from them.
  */
-import { type BankConstants, bankConstants, writeFeatures } from './bank.ts';
-import { multiply } from './dense.ts';
-import type { LinearModel } from './model.ts';
+import type { Core } from './kernel.ts';
+import { kernelOf } from './kernels.ts';
+import type { CommonModel, Model } from './model.ts';
 
 /** Values of `observed`: no reading at the tick. */
 export const MISSING = 0;
@@ -20,14 +21,14 @@ const LEAST_FADE_TICKS = 8;
  * Ticks without a reading after which a signal's forecast begins to fade to its seasonal mean, over as many again: the
  * horizon, or 8 where that is shorter.
  */
-export function fadeTicks(model: LinearModel): number {
+export function fadeTicks(model: CommonModel): number {
   return Math.max(model.horizon, LEAST_FADE_TICKS);
 }
 
 /**
  * The filter's buffers: written by `update` in place, once a tick; read by everything else.
  *
- * shapes  nc channels (signals first), F features a channel, d order, ny signals, r basis
+ * shapes  nc channels (signals first), d order
  * units   standardised, z = (y − mean) / scale
  */
 export interface FilterState {
@@ -49,19 +50,10 @@ export interface FilterState {
   readonly age: Int32Array;
   /** (nc) readings passed over, less those that came near their forecast since; 0 to rejectMaxTicks, where the guard opens. */
   readonly passed: Int32Array;
-  /** (nc × memoryCount) */
-  readonly memory: Float64Array;
-  /** (nc × ringLength) */
-  readonly ring: Float64Array;
-  /** Slot of the ring that holds the oldest value. */
-  ringAt: number;
-  /** (nc·F) */
-  readonly features: Float64Array;
+  /** What the kind remembers, and what follows from it; read and written by its kernel alone. */
+  readonly core: Core;
   /** (d) the predictive state */
   readonly x: Float64Array;
-  /** (ny·r) */
-  readonly coefficients: Float64Array;
-  readonly bank: BankConstants;
   /** (nc) clips, standardised */
   readonly low: Float64Array;
   readonly high: Float64Array;
@@ -72,9 +64,9 @@ export interface FilterState {
  *
  * shapes  as FilterState; allocates all that filtering will ever need
  */
-export function createState(model: LinearModel): FilterState {
+export function createState(model: Model): FilterState {
   const nc = model.channelCount;
-  const bank = bankConstants(model);
+  const core = kernelOf(model).createCore(model);
   const standardised = (values: Float64Array): Float64Array =>
     values.map((v, c) => (v - model.mean[c]) / model.scale[c]);
   return {
@@ -87,29 +79,9 @@ export function createState(model: LinearModel): FilterState {
     started: new Uint8Array(nc),
     age: new Int32Array(nc).fill(2 * fadeTicks(model)),
     passed: new Int32Array(nc),
-    memory: new Float64Array(nc * bank.memoryCount),
-    ring: new Float64Array(nc * bank.ringLength),
-    ringAt: 0,
-    features: new Float64Array(nc * model.featureCount),
-    x: new Float64Array(model.order),
-    coefficients: new Float64Array(model.signalCount * model.basisCount),
-    bank,
+    core,
+    x: core.x,
     low: standardised(model.clipLow),
     high: standardised(model.clipHigh),
   };
-}
-
-/**
- * Works out features, predictive state and forecast coefficients from the memories: φ, then x = W φ, then V x.
- *
- * shapes  features (nc·F), x (d), coefficients (ny·r)
- * cost    O(d · nc·F + ny·r · d); allocates nothing
- */
-export function refresh(model: LinearModel, state: FilterState): void {
-  const { bank, memory, ring, ringAt, value, features } = state;
-  for (let c = 0; c < model.channelCount; c++) {
-    writeFeatures(model, bank, memory, ring, ringAt, value, c, features);
-  }
-  multiply(model.bottleneck, model.order, features.length, features, 0, state.x, 0);
-  multiply(model.readout, state.coefficients.length, model.order, state.x, 0, state.coefficients, 0);
 }

@@ -3,11 +3,11 @@
  * forecast, and taken, unless it lies absurdly far away; a missing one is replaced by that forecast (zero innovation),
  * which costs far less accuracy than holding the last value. Whatever the readings are, every number stays finite.
  */
-import { advanceChannel, settleChannel } from './bank.ts';
 import { FilterError } from './errors.ts';
 import { predictStandardised } from './forecast.ts';
-import type { LinearModel } from './model.ts';
-import { type FilterState, FOLDED, fadeTicks, MISSING, PASSED_OVER, refresh } from './state.ts';
+import { kernelOf } from './kernels.ts';
+import type { CommonModel, Model } from './model.ts';
+import { type FilterState, FOLDED, fadeTicks, MISSING, PASSED_OVER } from './state.ts';
 
 /**
  * Folds one tick into the state, in place. A NaN or infinite reading counts as missing.
@@ -23,30 +23,23 @@ import { type FilterState, FOLDED, fadeTicks, MISSING, PASSED_OVER, refresh } fr
  * units   readings in units of the channels; state standardised
  * throws  FilterError 'shape' if readings has another length; 'tick' unless tick is the last one's successor (any whole
  *         number from 0 at the first)
- * cost    O(d · nc·F + ny·r · d); allocates nothing
+ * cost    that of the kind's kernel; allocates nothing
  */
-export function update(model: LinearModel, state: FilterState, tick: number, readings: Float64Array): void {
+export function update(model: Model, state: FilterState, tick: number, readings: Float64Array): void {
   checkTurn(model, state, tick, readings);
   predictStandardised(model, state, state.predicted);
-  if (state.tick >= 0) pushRing(model, state);
+  const kernel = kernelOf(model);
+  if (state.tick >= 0) kernel.beforeTick(model, state.core, state);
   for (let c = 0; c < model.channelCount; c++) {
     // y − y is 0 for finite y alone.
     if (readings[c] - readings[c] !== 0) missed(model, state, c);
     else observe(model, state, c, readings);
   }
   state.tick = tick;
-  refresh(model, state);
+  kernel.refresh(model, state.core, state);
 }
 
-/** Puts the value of the tick before into every ring, over the oldest. */
-function pushRing(model: LinearModel, state: FilterState): void {
-  const length = state.bank.ringLength;
-  if (length === 0) return;
-  for (let c = 0; c < model.channelCount; c++) state.ring[c * length + state.ringAt] = state.value[c];
-  state.ringAt = state.ringAt + 1 === length ? 0 : state.ringAt + 1;
-}
-
-function observe(model: LinearModel, state: FilterState, c: number, readings: Float64Array): void {
+function observe(model: Model, state: FilterState, c: number, readings: Float64Array): void {
   const y = Math.min(model.clipHigh[c], Math.max(model.clipLow[c], readings[c]));
   const z = Math.min(state.high[c], Math.max(state.low[c], (y - model.mean[c]) / model.scale[c]));
   state.reading[c] = z;
@@ -63,20 +56,20 @@ function observe(model: LinearModel, state: FilterState, c: number, readings: Fl
   if (!isFar && state.passed[c] > 0) state.passed[c]--;
   state.value[c] = z;
   if (state.started[c] === 1) {
-    advanceChannel(model, state.bank, state.memory, state.value, c);
+    kernelOf(model).advance(model, state.core, state, c);
   } else {
     state.started[c] = 1;
-    settleChannel(state.bank, state.memory, state.ring, state.value, c);
+    kernelOf(model).settle(model, state.core, state, c);
   }
 }
 
-function isFarOff(model: LinearModel, state: FilterState, c: number): boolean {
+function isFarOff(model: CommonModel, state: FilterState, c: number): boolean {
   if (c >= model.signalCount || state.started[c] === 0) return false;
   const limit = model.rejectSd * model.residualScale[c] * Math.sqrt(state.age[c] + 1);
   return Math.abs(state.innovation[c]) > limit;
 }
 
-function missed(model: LinearModel, state: FilterState, c: number): void {
+function missed(model: Model, state: FilterState, c: number): void {
   state.reading[c] = Number.NaN;
   state.innovation[c] = Number.NaN;
   state.observed[c] = MISSING;
@@ -84,13 +77,13 @@ function missed(model: LinearModel, state: FilterState, c: number): void {
 }
 
 /** Folds the one-step forecast in, in the place of a reading. */
-function replace(model: LinearModel, state: FilterState, c: number): void {
+function replace(model: Model, state: FilterState, c: number): void {
   if (state.age[c] < 2 * fadeTicks(model)) state.age[c]++;
   state.value[c] = state.predicted[c];
-  advanceChannel(model, state.bank, state.memory, state.value, c);
+  kernelOf(model).advance(model, state.core, state, c);
 }
 
-function checkTurn(model: LinearModel, state: FilterState, tick: number, readings: Float64Array): void {
+function checkTurn(model: CommonModel, state: FilterState, tick: number, readings: Float64Array): void {
   if (readings.length !== model.channelCount) {
     throw new FilterError('shape', `readings: expected ${model.channelCount} channels, got ${readings.length}`, {
       details: { expected: model.channelCount, got: readings.length },

@@ -33,7 +33,7 @@ test('a sealed bundle of format 1 opens, with its digest and its numbers', () =>
   const bundle = decodeBundle(opened.document);
   expect(bundle.site).toBe(expected.site);
   expect(bundle.channels.map((channel) => channel.name)).toEqual(expected.channels);
-  const { readout } = bundle.linear;
+  const { readout } = bundle.linear!;
   expect([...dequantise(readout).subarray(0, readout.cols)]).toEqual(expected.readoutRow0);
 });
 

@@ -4,7 +4,7 @@
  */
 import type { Bundle, BundleChannel, Tensor } from '@stillwell/protocol';
 import { ARITHMETIC, BUNDLE_FORMAT } from '@stillwell/protocol';
-import { type LinearModel, modelFromBundle } from '@stillwell/runtime/filter';
+import { type FilterState, type LinearCore, type LinearModel, modelFromBundle } from '@stillwell/runtime/filter';
 
 /** What may be chosen; everything has a default. */
 export interface ModelChoice {
@@ -138,7 +138,7 @@ export function syntheticBundle(choice: ModelChoice = {}): Bundle {
 
 /** The model of `syntheticBundle(choice)`. */
 export function syntheticModel(choice: ModelChoice = {}): LinearModel {
-  return modelFromBundle(syntheticBundle(choice));
+  return modelFromBundle(syntheticBundle(choice)) as LinearModel;
 }
 
 /**
@@ -209,4 +209,9 @@ function floatTensor(rows: number, cols: number, values: readonly number[]): Ten
   const view = new DataView(data.buffer);
   for (let k = 0; k < rows * cols; k++) view.setFloat32(4 * k, values[k], true);
   return { type: 'f32', rows, cols, scales: new Uint8Array(0), data };
+}
+
+/** What the bank keeps and works out in a state of the linear kind. */
+export function linearCore(state: FilterState): LinearCore {
+  return state.core as LinearCore;
 }

@@ -208,7 +208,7 @@ describe('fit', () => {
   it('learns once more from all of it when asked, and keeps what was judged', async () => {
     const [parted, whole] = [await run(series), await run(series, { useAll: true })];
     expect(whole.bundle.judge).toEqual(parted.bundle.judge);
-    expect(whole.bundle.linear.bottleneck.data).not.toEqual(parted.bundle.linear.bottleneck.data);
+    expect(whole.bundle.linear!.bottleneck.data).not.toEqual(parted.bundle.linear!.bottleneck.data);
     expect(whole.bundle.provenance.lastMs).toBe((series.firstTick + series.ticks - 1) * series.tickMs);
   });
 });

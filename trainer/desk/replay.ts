@@ -7,7 +7,7 @@ import { type Correction, latticeValue, type SegmentHead, SegmentReader } from '
 import {
   createState,
   type FilterState,
-  type LinearModel,
+  type Model,
   predictNext,
   restoreState,
   saveState,
@@ -35,7 +35,7 @@ export interface Replay {
  *
  * shapes  (nc)
  */
-export function residualScaleSteps(model: LinearModel): Float64Array {
+export function residualScaleSteps(model: Model): Float64Array {
   const steps = new Float64Array(model.channelCount);
   for (let c = 0; c < steps.length; c++) steps[c] = (model.residualScale[c]! * model.scale[c]!) / model.latticeStep[c]!;
   return steps;
@@ -48,7 +48,7 @@ export function residualScaleSteps(model: LinearModel): Float64Array {
  * throws      ProtocolError 'segment' when start or end state are not the ones the gateway named, or the coded part is
  *             damaged; TrainError 'archive' when the bundle has other channels, or the start state is missing
  */
-export function replaySegment(bytes: Uint8Array, model: LinearModel, startState: Uint8Array | null): Replay {
+export function replaySegment(bytes: Uint8Array, model: Model, startState: Uint8Array | null): Replay {
   const reader = new SegmentReader(bytes, residualScaleSteps(model));
   const { head } = reader;
   checkShape(head, model);
@@ -59,7 +59,7 @@ export function replaySegment(bytes: Uint8Array, model: LinearModel, startState:
   return { head, endState, corrections: reader.corrections, ...run };
 }
 
-function checkShape(head: SegmentHead, model: LinearModel): void {
+function checkShape(head: SegmentHead, model: Model): void {
   if (head.channelCount === model.channelCount && head.signalCount === model.signalCount) return;
   throw new TrainError(
     'archive',
@@ -68,7 +68,7 @@ function checkShape(head: SegmentHead, model: LinearModel): void {
   );
 }
 
-function startOf(reader: SegmentReader, model: LinearModel, before: Uint8Array | null): FilterState {
+function startOf(reader: SegmentReader, model: Model, before: Uint8Array | null): FilterState {
   const bytes = reader.head.startState ?? before;
   if (bytes === null) {
     const { number, gateway } = reader.head;
@@ -78,7 +78,7 @@ function startOf(reader: SegmentReader, model: LinearModel, before: Uint8Array |
   return bytes.length === 0 ? createState(model) : restoreState(model, bytes);
 }
 
-function runThrough(reader: SegmentReader, model: LinearModel, state: FilterState) {
+function runThrough(reader: SegmentReader, model: Model, state: FilterState) {
   const nc = model.channelCount;
   const lattice = new Float64Array(reader.head.ticks * nc);
   const predicted = new Float64Array(nc);
@@ -106,14 +106,14 @@ function runThrough(reader: SegmentReader, model: LinearModel, state: FilterStat
 }
 
 /** One-step forecast in lattice steps, as the gateway computes it; NaN before the first tick. */
-function predictSteps(model: LinearModel, state: FilterState, out: Float64Array): void {
+function predictSteps(model: Model, state: FilterState, out: Float64Array): void {
   predictNext(model, state, out);
   for (let c = 0; c < out.length; c++) out[c] = (out[c]! - model.latticeOffset[c]!) / model.latticeStep[c]!;
 }
 
 /** The first reading of a channel stands against the filter's start, not against a forecast: it says nothing of the model. */
 function addResiduals(
-  model: LinearModel,
+  model: Model,
   state: FilterState,
   started: Uint8Array,
   sums: { residualCount: Float64Array; residualSum: Float64Array; residualSquareSum: Float64Array },

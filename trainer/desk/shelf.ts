@@ -6,7 +6,7 @@
 import { readdirSync, readFileSync, statSync } from 'node:fs';
 import { join } from 'node:path';
 import { type Bundle, bundleDigest, decodeBundle } from '@stillwell/protocol';
-import { checkModel, type LinearModel, modelFromBundle } from '@stillwell/runtime/filter';
+import { checkModel, type Model, modelFromBundle } from '@stillwell/runtime/filter';
 import { documentOf } from '../bundle-file.ts';
 import { type Store, toBytes } from './store/open.ts';
 
@@ -14,7 +14,7 @@ import { type Store, toBytes } from './store/open.ts';
 export interface ShelvedBundle {
   readonly digest: string;
   readonly bundle: Bundle;
-  readonly model: LinearModel;
+  readonly model: Model;
 }
 
 /** What a look through the folder found. */

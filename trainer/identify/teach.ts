@@ -3,7 +3,7 @@
  * and seasons, then runs over it and puts its own one-step forecast wherever no reading was folded in (zero innovation,
  * as on the gateway), and the map is learned once more from that. Spikes the guard would pass over are mended likewise.
  */
-import type { LinearModel } from '@stillwell/runtime/filter';
+import type { Model } from '@stillwell/runtime/filter';
 import { calibrate } from '../judge/calibrate.ts';
 import { replayPaths } from '../judge/replay.ts';
 import { floatModel, openCalibration } from '../quantise/float-model.ts';
@@ -20,7 +20,7 @@ export interface Taught {
   readonly learned: Learned;
   readonly calibrationMoments: Moments;
   /** The model that stood in for missing readings; null where too few are missing for a second pass. */
-  readonly passing: LinearModel | null;
+  readonly passing: Model | null;
   readonly warnings: readonly string[];
 }
 
@@ -79,7 +79,7 @@ function missingShare({ filled, around, learnTicks }: Prepared): number {
   return missing / (around.signalCount * learnTicks);
 }
 
-function passingModel(prepared: Prepared, first: LearnOutput): LinearModel {
+function passingModel(prepared: Prepared, first: LearnOutput): Model {
   const { around, calm, learnTicks, calibrateTicks } = prepared;
   const { learned, choice } = first;
   const order = Math.min(PASS_ORDER, learned.bottleneck.carried.length);
@@ -100,7 +100,7 @@ function passingModel(prepared: Prepared, first: LearnOutput): LinearModel {
 }
 
 /** The completed history with the passing model's folded values in its first `ticks` ticks. */
-function refill({ around, calm, filled }: Prepared, passing: LinearModel, ticks: number): Filled {
+function refill({ around, calm, filled }: Prepared, passing: Model, ticks: number): Filled {
   const values = filled.values.map((z) => z.slice());
   replayPaths(passing, calm, { fromTick: 0, toTick: ticks }, ({ at, state }) => {
     for (let i = 0; i < around.signalCount; i++) if (state.started[i] === 1) values[i][at] = state.value[i];

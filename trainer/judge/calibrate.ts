@@ -3,7 +3,7 @@
  * learn from. The gateway then keeps tracking; these are only its first values. A channel without one reading there
  * starts from the spread of the learning part, one standard deviation, which is all that is known of it.
  */
-import { type LinearModel, normalQuantile } from '@stillwell/runtime/filter';
+import { type Model, normalQuantile } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
 import type { Calibration } from '../quantise/float-model.ts';
 import type { TickSpan } from '../span.ts';
@@ -26,7 +26,7 @@ const JUMP_QUANTILE = 0.995;
  * source  robust standard deviation: Hampel, J. American Statistical Association 69 (1974); radii: split conformal
  * cost    one replay of the span, one sort a cell
  */
-export function calibrate(model: LinearModel, series: Series, span: TickSpan, coverage: number): Calibration {
+export function calibrate(model: Model, series: Series, span: TickSpan, coverage: number): Calibration {
   const { signalCount: ny, channelCount: nc, horizon: H } = model;
   const ticks = span.toTick - span.fromTick;
   const every = Math.max(1, Math.ceil((ticks - H + 1) / MOST_ORIGINS));
@@ -72,7 +72,7 @@ export function calibrate(model: LinearModel, series: Series, span: TickSpan, co
 }
 
 /** A standardised value back on the unscaled axis of `reading / scale`. */
-function zOf(model: LinearModel, channel: number, value: number): number {
+function zOf(model: Model, channel: number, value: number): number {
   return value + model.mean[channel] / model.scale[channel];
 }
 

@@ -3,7 +3,7 @@
  * only pairs whose reading is there. Readings are scored as the filter takes them, clipped to the bundle's widest values,
  * so that one impossible spike does not decide the table; the rivals are scored on the same.
  */
-import type { LinearModel } from '@stillwell/runtime/filter';
+import type { Model } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
 import type { TickSpan } from '../span.ts';
 import { Coverage } from './coverage.ts';
@@ -60,7 +60,7 @@ export interface HindcastSpan extends TickSpan {
   /** What rivals may learn from; null, or outside the series: rivals that need it are left out. */
   readonly learn: TickSpan | null;
   /** Model whose clips the readings are scored under, so that two models are held against the same; the one replayed. */
-  readonly clipAs?: LinearModel;
+  readonly clipAs?: Model;
 }
 
 /** Paths kept for plots: about this many, evenly spread. */
@@ -75,7 +75,7 @@ const KEPT_PATHS = 120;
  * source  rolling origin: Tashman, International Journal of Forecasting 16 (2000)
  * cost    one filter step and H scores a signal and rival at every origin
  */
-export function hindcast(model: LinearModel, series: Series, span: HindcastSpan, units: readonly string[]): Hindcast {
+export function hindcast(model: Model, series: Series, span: HindcastSpan, units: readonly string[]): Hindcast {
   const from = span.fromTick - series.firstTick;
   const to = span.toTick - series.firstTick;
   const { signalCount: ny, horizon: H } = model;
@@ -179,7 +179,7 @@ class Tally {
     });
   }
 
-  result(model: LinearModel, series: Series, units: readonly string[]): Hindcast {
+  result(model: Model, series: Series, units: readonly string[]): Hindcast {
     const H = this.#horizon;
     const own = this.#own;
     const perCell = (values: Float64Array, power: number): Float64Array =>

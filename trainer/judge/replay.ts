@@ -9,12 +9,12 @@ import {
   type FilterState,
   forecastPath,
   intervalOf,
-  type LinearModel,
+  type Model,
+  settlingTicksOf,
   trackBounds,
   update,
 } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
-import { type Bank, settlingTicks } from '../identify/bank.ts';
 import type { TickSpan } from '../span.ts';
 
 /** What the filter has to say after a tick; the arrays are overwritten at the next. */
@@ -40,7 +40,7 @@ export interface Moment extends PathMoment {
  * units   the signals'
  * throws  FilterError if the model does not fit the series
  */
-export function replay(model: LinearModel, series: Series, span: TickSpan, visit: (moment: Moment) => void): void {
+export function replay(model: Model, series: Series, span: TickSpan, visit: (moment: Moment) => void): void {
   const bounds: Bounds = createBounds(model);
   const lower = new Float64Array(model.signalCount * model.horizon);
   const upper = new Float64Array(lower.length);
@@ -59,12 +59,7 @@ export function replay(model: LinearModel, series: Series, span: TickSpan, visit
  * units   the signals'
  * throws  as `replay`
  */
-export function replayPaths(
-  model: LinearModel,
-  series: Series,
-  span: TickSpan,
-  visit: (moment: PathMoment) => void,
-): void {
+export function replayPaths(model: Model, series: Series, span: TickSpan, visit: (moment: PathMoment) => void): void {
   run(model, series, span, span.fromTick, (at, state, median) => {
     if (at >= span.fromTick) visit({ at, state, median });
   });
@@ -72,7 +67,7 @@ export function replayPaths(
 
 /** Every tick from the start of the warm-up; paths from tick `pathsFrom` on. */
 function run(
-  model: LinearModel,
+  model: Model,
   series: Series,
   span: TickSpan,
   pathsFrom: number,
@@ -81,19 +76,11 @@ function run(
   const state = createState(model);
   const median = new Float64Array(model.signalCount * model.horizon);
   const readings = new Float64Array(model.channelCount);
-  const warm = Math.max(model.warmupTicks, settlingTicks(bankOf(model)));
+  const warm = Math.max(model.warmupTicks, settlingTicksOf(model));
   for (let at = Math.max(0, span.fromTick - warm); at < span.toTick; at++) {
     for (let c = 0; c < readings.length; c++) readings[c] = series.values[c][at];
     update(model, state, series.firstTick + at, readings);
     if (at >= pathsFrom) forecastPath(model, state, median);
     each(at, state, median);
   }
-}
-
-function bankOf(model: LinearModel): Bank {
-  return {
-    decays: Array.from(model.decays),
-    resonators: Array.from(model.resonatorRe, (re, k) => [re, model.resonatorIm[k]] as const),
-    lags: Array.from(model.lags),
-  };
 }

@@ -8,7 +8,7 @@ import {
   createState,
   forecastPath,
   intervalOf,
-  type LinearModel,
+  type Model,
   update,
 } from '@stillwell/runtime/filter';
 import { TrainError } from '../errors.ts';
@@ -34,7 +34,7 @@ export interface Audit {
  * source  none
  * cost    one replay
  */
-export function replayError(model: LinearModel, series: Series, span: TickSpan): number {
+export function replayError(model: Model, series: Series, span: TickSpan): number {
   const { signalCount: ny, horizon: H } = model;
   const scores = new Scores(ny * H);
   replayPaths(model, series, { fromTick: span.fromTick - 1, toTick: span.toTick - H }, ({ at, median }) => {
@@ -59,7 +59,7 @@ export function replayError(model: LinearModel, series: Series, span: TickSpan):
  * source  none
  * cost    as many filter steps
  */
-export function checkAtRest(model: LinearModel, series: Series, span: TickSpan): void {
+export function checkAtRest(model: Model, series: Series, span: TickSpan): void {
   const { signalCount: ny, horizon: H } = model;
   const state = createState(model);
   const bounds = createBounds(model);

@@ -35,8 +35,8 @@ export interface Calibration {
 /**
  * Joins factors and surroundings.
  *
- * shapes  as LinearModel
- * units   as LinearModel
+ * shapes  as Model
+ * units   as Model
  * throws  nothing; the caller checks with checkModel where it must
  * source  none
  * cost    copies

@@ -73,9 +73,9 @@ describe('refused, cheapest question first', () => {
   });
   test('probe: any weight changed under a good signature', () => {
     const sealed = resealed((bundle) => {
-      const data = Uint8Array.from(bundle.linear.bottleneck.data);
+      const data = Uint8Array.from(bundle.linear!.bottleneck.data);
       data[3]! ^= 4;
-      return { linear: { ...bundle.linear, bottleneck: { ...bundle.linear.bottleneck, data } } };
+      return { linear: { ...bundle.linear!, bottleneck: { ...bundle.linear!.bottleneck, data } } };
     });
     expect(refusal(sealed).code).toBe('probe');
   });

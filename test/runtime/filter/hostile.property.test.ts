@@ -12,7 +12,7 @@ import {
 } from '@stillwell/runtime/filter';
 import fc from 'fast-check';
 import { describe, expect, test } from 'vitest';
-import { seededNumbers, syntheticModel } from '../../support/models.ts';
+import { linearCore, seededNumbers, syntheticModel } from '../../support/models.ts';
 
 const HOSTILE = [
   Number.NaN,
@@ -50,11 +50,11 @@ const survive = (model: LinearModel, ticks: number, next: (n: number, c: number)
   const readings = new Float64Array(model.channelCount);
   const watched = [
     state.value,
-    state.memory,
-    state.ring,
-    state.features,
+    linearCore(state).memory,
+    linearCore(state).ring,
+    linearCore(state).features,
     state.x,
-    state.coefficients,
+    linearCore(state).coefficients,
     median,
     lower,
     upper,

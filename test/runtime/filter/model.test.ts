@@ -22,14 +22,14 @@ describe('modelFromBundle', () => {
       3, 2, 26, 8, 4,
     ]);
     expect(model.clipHigh[2]).toBe(bundle.channels[2].clip[1]);
-    const { data, scales } = bundle.linear.bottleneck;
+    const { data, scales } = bundle.linear!.bottleneck;
     const scale = new DataView(scales.buffer).getFloat32(4 * 3, true);
     const weight = new DataView(data.buffer).getInt8(3 * 78 + 10);
     expect(model.bottleneck[3 * 78 + 10]).toBe(weight * scale);
   });
 
   test('feature scales are exact powers of two, both ways', () => {
-    const exponents = new Int8Array(bundle.linear.featureExponents.data.buffer);
+    const exponents = new Int8Array(bundle.linear!.featureExponents.data.buffer);
     expect(new Set(exponents).size).toBe(5);
     model.featureScale.forEach((scale, k) => {
       expect(scale).toBe(2 ** exponents[k]);

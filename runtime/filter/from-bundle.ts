@@ -1,0 +1,83 @@
+/** From a bundle's document to a model ready to compute with. */
+import { type Bundle, dequantise, type LinearTensors, type Tensor } from '@stillwell/protocol';
+import { checkModel } from './check.ts';
+import { FilterError } from './errors.ts';
+import type { BankModel, CommonModel, Model } from './model.ts';
+
+/**
+ * Dequantises a bundle into a model that has passed `checkModel`.
+ *
+ * throws  FilterError 'model' when a number or a shape cannot be computed with; ProtocolError 'tensor' from dequantising
+ */
+export function modelFromBundle(bundle: Bundle): Model {
+  const model = modelOfKind(bundle);
+  checkModel(model);
+  return model;
+}
+
+function modelOfKind(bundle: Bundle): Model {
+  const { kind, linear } = bundle;
+  const common = commonOf(bundle);
+  if (kind === 'linear' && linear !== undefined) return { kind, ...common, ...bankOf(linear) };
+  throw new FilterError('model', `bundle: expected the tensors of its kind, "${kind}", got none; fit the bundle again`);
+}
+
+/** What every kind has; the order is the kind's to say. */
+function commonOf(bundle: Bundle): Omit<CommonModel, 'order'> {
+  const { channels } = bundle;
+  const perChannel = (pick: (channel: (typeof channels)[number]) => number): Float64Array =>
+    Float64Array.from(channels, pick);
+  const signalCount = channels.filter((channel) => channel.role === 'signal').length;
+  if (channels.slice(0, signalCount).some((channel) => channel.role !== 'signal')) {
+    throw new FilterError('model', 'bundle channels: expected all signals before all inputs, got them mixed');
+  }
+  return {
+    tickMs: bundle.tickMs,
+    channelCount: channels.length,
+    signalCount,
+    horizon: bundle.horizon,
+    mean: perChannel((channel) => channel.mean),
+    scale: perChannel((channel) => channel.scale),
+    latticeStep: perChannel((channel) => channel.lattice.step),
+    latticeOffset: perChannel((channel) => channel.lattice.offset),
+    clipLow: perChannel((channel) => channel.clip[0]),
+    clipHigh: perChannel((channel) => channel.clip[1]),
+    residualScale: perChannel((channel) => channel.residualScale),
+    seasonalPeriod: bundle.seasonal.periodTicks,
+    seasonalBins: bundle.seasonal.table.cols,
+    seasonal: dequantise(bundle.seasonal.table),
+    coverage: bundle.bounds.coverage,
+    boundsRate: bundle.bounds.rate,
+    radius: dequantise(bundle.bounds.radius),
+    rejectSd: bundle.guard.rejectSd,
+    rejectMaxTicks: bundle.guard.maxTicks,
+    warmupTicks: bundle.warmupTicks,
+  };
+}
+
+/** The bank and the tensors around it. */
+function bankOf(linear: LinearTensors): Omit<BankModel, Exclude<keyof CommonModel, 'order'>> {
+  return {
+    featureCount: linear.decays.length + 2 * linear.resonators.length + linear.lags.length,
+    order: linear.bottleneck.rows,
+    basisCount: linear.horizonBasis.cols,
+    decays: Float64Array.from(linear.decays),
+    resonatorRe: Float64Array.from(linear.resonators, ([re]) => re),
+    resonatorIm: Float64Array.from(linear.resonators, ([, im]) => im),
+    lags: Int32Array.from(linear.lags),
+    featureScale: powersOfTwo(linear.featureExponents),
+    bottleneck: dequantise(linear.bottleneck),
+    readout: dequantise(linear.readout),
+    horizonBasis: dequantise(linear.horizonBasis),
+  };
+}
+
+/** 2^exponent by repeated doubling or halving: exact, and without Math.pow. */
+function powersOfTwo(exponents: Tensor): Float64Array {
+  return dequantise(exponents).map((exponent) => {
+    let power = 1;
+    for (let k = 0; k < exponent; k++) power *= 2;
+    for (let k = 0; k > exponent; k--) power /= 2;
+    return power;
+  });
+}

@@ -1,0 +1,24 @@
+/** The kernel of every kind. */
+import type { Core, Kernel } from './kernel.ts';
+import { linearKernel } from './linear.ts';
+import type { Model } from './model.ts';
+
+type AnyKernel = Kernel<Model, Core>;
+
+const KERNELS: Readonly<Record<Model['kind'], AnyKernel>> = {
+  linear: linearKernel as unknown as AnyKernel,
+};
+
+/** The kernel of a model; it takes only models and cores of that kind. */
+export function kernelOf(model: Model): AnyKernel {
+  return KERNELS[model.kind];
+}
+
+/**
+ * Ticks until the start of a run no longer shows: how long a filter is warmed up on history.
+ *
+ * units   ticks
+ */
+export function settlingTicksOf(model: Model): number {
+  return kernelOf(model).settlingTicks(model);
+}

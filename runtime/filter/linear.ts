@@ -1,0 +1,185 @@
+/**
+ * The linear kind: bank → features φ → state x = W φ → coefficients V x → path z(t) + B V x.
+ */
+import { advanceChannel, type BankConstants, bankConstants, settleChannel, writeFeatures } from './bank.ts';
+import { multiply } from './dense.ts';
+import type { Core, Kernel } from './kernel.ts';
+import type { BankModel, LinearModel } from './model.ts';
+import { requireEach, requireField, requireLength, requireWeights, requireWhole, WEIGHT_LIMIT } from './requirement.ts';
+import type { FilterState } from './state.ts';
+
+/**
+ * Buffers of the bank and of what follows from it.
+ *
+ * shapes  nc channels, F features a channel, d order, ny signals, r basis
+ * units   standardised
+ */
+export interface LinearCore extends Core {
+  readonly bank: BankConstants;
+  /** (nc × memoryCount) */
+  readonly memory: Float64Array;
+  /** (nc × ringLength) */
+  readonly ring: Float64Array;
+  /** Slot of the ring that holds the oldest value. */
+  ringAt: number;
+  /** (nc·F) */
+  readonly features: Float64Array;
+  /** (ny·r) */
+  readonly coefficients: Float64Array;
+}
+
+/** Buffers before the first tick. */
+export function createLinearCore(model: BankModel): LinearCore {
+  const nc = model.channelCount;
+  const bank = bankConstants(model);
+  return {
+    bank,
+    memory: new Float64Array(nc * bank.memoryCount),
+    ring: new Float64Array(nc * bank.ringLength),
+    ringAt: 0,
+    features: new Float64Array(nc * model.featureCount),
+    x: new Float64Array(model.order),
+    coefficients: new Float64Array(model.signalCount * model.basisCount),
+  };
+}
+
+/** Puts the value of the tick before into every ring, over the oldest. */
+function pushRing(model: BankModel, core: LinearCore, state: FilterState): void {
+  const length = core.bank.ringLength;
+  if (length === 0) return;
+  for (let c = 0; c < model.channelCount; c++) core.ring[c * length + core.ringAt] = state.value[c];
+  core.ringAt = core.ringAt + 1 === length ? 0 : core.ringAt + 1;
+}
+
+/**
+ * Works out features, predictive state and forecast coefficients from the memories.
+ *
+ * shapes  features (nc·F), x (d), coefficients (ny·r)
+ * cost    O(d · nc·F + ny·r · d); allocates nothing
+ */
+function refreshLinear(model: BankModel, core: LinearCore, state: FilterState): void {
+  const { bank, memory, ring, ringAt, features } = core;
+  for (let c = 0; c < model.channelCount; c++) {
+    writeFeatures(model, bank, memory, ring, ringAt, state.value, c, features);
+  }
+  multiply(model.bottleneck, model.order, features.length, features, 0, core.x, 0);
+  multiply(model.readout, core.coefficients.length, model.order, core.x, 0, core.coefficients, 0);
+}
+
+/**
+ * z(t) + Σ_k B[h−1, k] coefficient k, for every signal.
+ *
+ * shapes  out (ny × steps)
+ * cost    O(ny · steps · r); allocates nothing
+ */
+function linearPaths(
+  model: BankModel,
+  core: LinearCore,
+  state: FilterState,
+  steps: number,
+  _plan: Float64Array | null,
+  out: Float64Array,
+): void {
+  const r = model.basisCount;
+  for (let i = 0; i < model.signalCount; i++) {
+    const at = i * steps;
+    multiply(model.horizonBasis, steps, r, core.coefficients, i * r, out, at);
+    const now = state.value[i];
+    for (let h = 0; h < steps; h++) out[at + h] = now + out[at + h];
+  }
+}
+
+/** What the slowest memory still holds of the start, e⁻⁴, when it no longer shows. */
+const FORGOTTEN = 0.018315638888734179;
+const LONGEST_SETTLING = 1_000_000;
+
+/** Ticks in which the slowest memory forgets, or the longest lag. */
+function settlingTicks(model: BankModel): number {
+  let slowest = 0;
+  for (const decay of model.decays) slowest = Math.max(slowest, decay);
+  for (let k = 0; k < model.resonatorRe.length; k++) {
+    const re = model.resonatorRe[k];
+    const im = model.resonatorIm[k];
+    slowest = Math.max(slowest, Math.sqrt(re * re + im * im));
+  }
+  let ticks = 1;
+  for (let left = slowest; left > FORGOTTEN && ticks < LONGEST_SETTLING; ticks++) left *= slowest;
+  return Math.max(ticks, ...model.lags);
+}
+
+function copyOut(_model: BankModel, core: LinearCore, channel: number, out: Float64Array, at: number): void {
+  if (channel < 0) return;
+  const { memory, ring, ringAt, bank } = core;
+  out.set(memory.subarray(channel * bank.memoryCount, (channel + 1) * bank.memoryCount), at);
+  const from = channel * bank.ringLength;
+  const ringOut = at + bank.memoryCount;
+  out.set(ring.subarray(from + ringAt, from + bank.ringLength), ringOut);
+  out.set(ring.subarray(from, from + ringAt), ringOut + bank.ringLength - ringAt);
+}
+
+function copyIn(_model: BankModel, core: LinearCore, channel: number, from: Float64Array, at: number): void {
+  if (channel < 0) return;
+  const { memory, ring, bank } = core;
+  core.ringAt = 0;
+  memory.set(from.subarray(at, at + bank.memoryCount), channel * bank.memoryCount);
+  const ringFrom = at + bank.memoryCount;
+  ring.set(from.subarray(ringFrom, ringFrom + bank.ringLength), channel * bank.ringLength);
+}
+
+/**
+ * Refuses a bank, or tensors around it, that cannot be computed with.
+ *
+ * throws  FilterError 'model'
+ */
+function checkBankModel(model: BankModel): void {
+  const { decays, resonatorRe, resonatorIm, lags, featureCount, order, basisCount, horizon } = model;
+  const nc = model.channelCount;
+  requireWhole(basisCount, 'basisCount', 1, 4096);
+  requireLength(resonatorIm, 'resonatorIm', resonatorRe.length);
+  const features = decays.length + resonatorRe.length + resonatorIm.length + lags.length;
+  requireField(
+    features === featureCount && features > 0,
+    'featureCount',
+    `decays + 2 × resonators + lags = ${features}, above 0`,
+    featureCount,
+  );
+  requireLength(model.featureScale, 'featureScale', nc * featureCount);
+  requireLength(model.bottleneck, 'bottleneck', order * nc * featureCount);
+  requireLength(model.readout, 'readout', model.signalCount * basisCount * order);
+  requireLength(model.horizonBasis, 'horizonBasis', horizon * basisCount);
+  requireEach(decays, 'decays', (value) => value > 0 && value < 1, 'more than 0 and less than 1');
+  for (let k = 0; k < resonatorRe.length; k++) {
+    const modulus = Math.sqrt(resonatorRe[k] * resonatorRe[k] + resonatorIm[k] * resonatorIm[k]);
+    requireField(modulus < 1, `resonators[${k}]`, 'a modulus less than 1', modulus);
+  }
+  for (let k = 0; k < lags.length; k++) {
+    const least = k === 0 ? 1 : lags[k - 1] + 1;
+    requireField(lags[k] >= least && lags[k] <= 1e6, `lags[${k}]`, `ascending, ${least} to 1000000`, lags[k]);
+  }
+  requireEach(
+    model.featureScale,
+    'featureScale',
+    (value) => value > 0 && value <= WEIGHT_LIMIT,
+    'a finite number above 0',
+  );
+  for (const name of ['bottleneck', 'readout', 'horizonBasis'] as const) requireWeights(model[name], name);
+}
+
+/** The kernel of the linear kind; kinds that build on the bank take it up piece by piece. */
+export const linearKernel: Kernel<LinearModel, LinearCore> = {
+  check: checkBankModel,
+  fingerprint: (model) => [model.decays, model.resonatorRe, model.resonatorIm, Float64Array.from(model.lags)],
+  settlingTicks,
+  createCore: createLinearCore,
+  memoryLayout: (model) => {
+    const { memoryCount, ringLength } = bankConstants(model);
+    return { perChannel: memoryCount + ringLength, shared: 0 };
+  },
+  copyOut,
+  copyIn,
+  beforeTick: pushRing,
+  settle: (_model, core, state, channel) => settleChannel(core.bank, core.memory, core.ring, state.value, channel),
+  advance: (model, core, state, channel) => advanceChannel(model, core.bank, core.memory, state.value, channel),
+  refresh: refreshLinear,
+  paths: linearPaths,
+};
