@@ -1,4 +1,4 @@
-export type * from './bundle.ts';
+export * from './bundle.ts';
 export { bundleDigest, decodeBundle, encodeBundle } from './bundle-document.ts';
 export { decode, encode } from './codec.ts';
 export { sha256, toHex } from './digest.ts';
@@ -31,6 +31,7 @@ export { bundleSchemaHash, describeSchemaDifference, schemaHash } from './schema
 export * from './seal.ts';
 export * from './segment/index.ts';
 export * from './site.ts';
+export { type ExcludedSpan, type ExcludedWhile, type Exclusion, plainExclusion } from './site-exclude.ts';
 export { formatSite } from './site-format.ts';
 export * from './state.ts';
 export * from './tensor.ts';

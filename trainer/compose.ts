@@ -8,25 +8,28 @@ import {
   type Bundle,
   type BundleChannel,
   bundleDigest,
+  encodeBundle,
   type JudgeTable,
   quantiseTensor,
   schemaHash,
 } from '@stillwell/protocol';
 import { modelFromBundle, runProbe } from '@stillwell/runtime/filter';
+import { excludedFacts } from './exclusions.ts';
 import type { FitInput, FitOptions } from './fit-options.ts';
 import type { Series } from './history/series.ts';
 import type { Verdicts } from './judge/gate.ts';
 import type { Hindcast } from './judge/hindcast.ts';
 import { skillScore } from './judge/scores.ts';
+import type { KindSections } from './kinds/candidate.ts';
 import type { Calibration, Surroundings } from './quantise/float-model.ts';
-import type { FactorTensors } from './quantise/quantise.ts';
 
 /** Everything a document is made of. */
 export interface Composition {
   readonly input: FitInput;
   readonly options: FitOptions;
   readonly around: Surroundings;
-  readonly tensors: FactorTensors;
+  /** Of the model's kind. */
+  readonly sections: KindSections;
   readonly calibration: Calibration;
   readonly judge: JudgeTable;
   /** Tick after the last one learned from. */
@@ -62,15 +65,27 @@ export function composeBundle(parts: Composition): Bundle {
   return { ...draft, probe: { seed: parts.options.seed, ticks: PROBE_TICKS, digest, last } };
 }
 
+/**
+ * Length of the document that these parts will give, without computing the probe.
+ *
+ * shapes  as `composeBundle`
+ * units   bytes
+ * throws  ProtocolError if the parts contradict each other
+ * source  none
+ * cost    one encoding
+ */
+export function documentBytes(parts: Composition): number {
+  return encodeBundle(bundleWithoutProbe(parts)).length;
+}
+
 function bundleWithoutProbe(parts: Composition): Bundle {
-  const { input, around, tensors, calibration } = parts;
+  const { input, around, sections, calibration } = parts;
   const { site, series } = input;
-  const { bank, season, horizon, signalCount } = around;
+  const { season, horizon, signalCount } = around;
   const gateTicks = GATE_HORIZONS * horizon;
   return {
     format: BUNDLE_FORMAT,
     arithmetic: ARITHMETIC,
-    kind: 'linear',
     site: site.site,
     equipmentClass: site.equipmentClass,
     schema: schemaHash(site),
@@ -78,7 +93,7 @@ function bundleWithoutProbe(parts: Composition): Bundle {
     tickMs: series.tickMs,
     horizon,
     channels: channelsOf(parts),
-    linear: { decays: bank.decays, resonators: bank.resonators, lags: bank.lags, ...tensors },
+    ...sections,
     seasonal: {
       periodTicks: season.periodTicks,
       table: quantiseTensor(season.means, signalCount, season.bins, 'i8'),
@@ -93,7 +108,8 @@ function bundleWithoutProbe(parts: Composition): Bundle {
     gates: { worseRatio: WORSE_RATIO, trialTicks: gateTicks, probationTicks: gateTicks },
     provenance: provenanceOf(parts, series),
     judge: parts.judge,
-    probe: { seed: parts.options.seed, ticks: PROBE_TICKS, digest: EMPTY_DIGEST, last: new Array(horizon).fill(0) },
+    // Float64 take nine bytes each whatever they are, but whole numbers less.
+    probe: { seed: parts.options.seed, ticks: PROBE_TICKS, digest: EMPTY_DIGEST, last: new Array(horizon).fill(0.1) },
   };
 }
 
@@ -127,7 +143,7 @@ function provenanceOf(parts: Composition, series: Series): Bundle['provenance'] 
     ticks: series.ticks,
     previous: input.previous ? bundleDigest(input.previous) : null,
     seed: options.seed,
-    options: JSON.stringify({ learnShare, calibrateShare, maxBytes, coverage, useAll, ...settled }),
+    options: JSON.stringify({ learnShare, calibrateShare, maxBytes, coverage, useAll, ...settled, ...excludedFacts(series) }),
     versions: { trainer: TRAINER_VERSION },
   };
 }

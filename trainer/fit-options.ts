@@ -2,6 +2,7 @@
  * What a fit is asked: the options with their defaults, and the history it works on.
  */
 import type { Site } from '@stillwell/protocol';
+import type { Model } from '@stillwell/runtime/filter';
 import type { Series } from './history/series.ts';
 
 /** Options of a fit. */
@@ -17,6 +18,8 @@ export interface FitOptions {
   readonly coverage: number;
   /** After judging, learn once more from every tick with the penalties already chosen. */
   readonly useAll: boolean;
+  /** Kind of model; `auto`: the judge's choice among all that apply. */
+  readonly kind: Model['kind'] | 'auto';
   /** Why a person wants it sealed without skill; null otherwise. Stands in the bundle. */
   readonly override: string | null;
   readonly progress: (step: string) => void;
@@ -30,6 +33,7 @@ export const FIT_DEFAULTS: FitOptions = Object.freeze({
   maxBytes: 24 * 1024,
   coverage: 0.9,
   useAll: false,
+  kind: 'auto',
   override: null,
   progress: () => {},
 });

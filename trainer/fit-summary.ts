@@ -32,7 +32,7 @@ export function fitSummary(result: FitResult): string {
     ...verdicts.signals.map((verdict) => `  ${verdict.sentence}`),
     '',
     verdicts.sentence,
-    `Bundle ${bytesText(result.document.length)}: ${chosen.order} states, ${chosen.basisCount} curves, bank of ${chosen.bank}; ` +
+    `Bundle ${bytesText(result.document.length)}: ${chosen.kind} kind, ${chosen.name}; ` +
       `rounding cost ${rounding} of the squared error.`,
     ...result.warnings.map((warning) => `Note: ${warning}`),
     '',

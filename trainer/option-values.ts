@@ -1,5 +1,6 @@
 /** Values of command-line options, checked where they are read. */
-import { InvalidArgumentError } from 'commander';
+import { BUNDLE_KINDS } from '@stillwell/protocol';
+import { InvalidArgumentError, Option } from 'commander';
 
 /** A parser for a whole number from `least` to `most`. */
 export function wholeNumber(least: number, most: number = Number.MAX_SAFE_INTEGER): (text: string) => number {
@@ -33,6 +34,16 @@ export function share(text: string): number {
   const value = Number(text);
   if (!(value > 0 && value < 1)) throw new InvalidArgumentError('Expected a share between 0 and 1.');
   return value;
+}
+
+/** The option that asks for a kind of model. */
+export function kindOption(): Option {
+  return new Option(
+    '--kind <kind>',
+    'kind of model; auto: the best on the calibration part, the smaller where they tie',
+  )
+    .choices(['auto', ...BUNDLE_KINDS])
+    .default('auto');
 }
 
 /** Gathers a repeated option. */

@@ -4,22 +4,20 @@
  */
 import { type Bundle, decodeBundle, encodeBundle, MAX_SIGNATURES } from '@stillwell/protocol';
 import { type Model, modelFromBundle } from '@stillwell/runtime/filter';
-import { type Composition, composeBundle, judgeTable, placeholderJudge } from './compose.ts';
-import { TrainError } from './errors.ts';
+import { type Composition, composeBundle, documentBytes, judgeTable, placeholderJudge } from './compose.ts';
 import type { FitInput, FitOptions } from './fit-options.ts';
 import type { Series } from './history/series.ts';
 import { bankName, featureCount } from './identify/bank.ts';
-import type { Choice } from './identify/choose.ts';
-import { chooseSize, type Size, sizeBytes } from './identify/order.ts';
 import { type Prepared, prepareHistory } from './identify/prepare.ts';
-import { type Taught, teach, teachAgain } from './identify/teach.ts';
+import { type Taught, teach } from './identify/teach.ts';
 import { calibrate } from './judge/calibrate.ts';
 import { judge, type Verdicts, verdictSteps } from './judge/gate.ts';
 import { type Hindcast, hindcast } from './judge/hindcast.ts';
 import { meanOf } from './judge/scores.ts';
+import { type KindSections, withCalibration } from './kinds/candidate.ts';
+import { chooseKind, type KindChoice, type Tried } from './kinds/choose-kind.ts';
 import { type Audit, checkAtRest, replayError } from './quantise/audit.ts';
-import { floatModel, openCalibration, type Surroundings } from './quantise/float-model.ts';
-import { type Factors, floatFactors, roundedFactors } from './quantise/quantise.ts';
+import { openCalibration, type Surroundings } from './quantise/float-model.ts';
 import { checkOptions, type Split, splitHistory } from './requirements.ts';
 import type { TickSpan } from './span.ts';
 
@@ -27,6 +25,13 @@ export { FIT_DEFAULTS, type FitInput, type FitOptions } from './fit-options.ts';
 
 /** What the learning settled on. */
 export interface Chosen {
+  readonly kind: Model['kind'];
+  /** For people: what the model is made of. */
+  readonly name: string;
+  /** Length of the predictive state. */
+  readonly order: number;
+  /** Every kind tried, with its error on the calibration part. */
+  readonly tried: readonly Tried[];
   /** Ridge penalty of each signal's own stage, relative to features of unit variance; null: that stage did not pay. */
   readonly ownPenalty: readonly (number | null)[];
   /** Ridge penalty of the stage across signals, by signal; null: that stage did not pay. */
@@ -35,8 +40,6 @@ export interface Chosen {
   readonly bank: string;
   readonly featureCount: number;
   readonly periodTicks: number;
-  readonly order: number;
-  readonly basisCount: number;
   readonly folds: number;
 }
 
@@ -60,8 +63,8 @@ export interface FitResult {
   readonly timings: Readonly<Record<string, number>>;
 }
 
-/** Rounds of trying a smaller size until the document fits. */
-const MOST_ROUNDS = 4;
+/** Characters of the provenance kept free for what a kind settles on. */
+const SETTLED_ROOM = 160;
 /** What sealing adds at most: the envelope's head and four signatures. */
 const SIGNED_BYTES = 56 + MAX_SIGNATURES * 72;
 /** Step of the gateway's quantile tracker; measured to hold weekly coverage on real records. */
@@ -82,7 +85,7 @@ export async function fit(input: FitInput, options: FitOptions): Promise<FitResu
   const prepared = prepareHistory(input.series, input.site, input.lattices, split);
   clock.lap('learning');
   const taught = teach(prepared);
-  clock.lap('choosing the size and calibrating');
+  clock.lap('choosing the kind and size, and calibrating');
   const small = shrink(input, options, split, prepared, taught);
   clock.lap('judging');
   const units = [...input.site.signals, ...input.site.inputs].map((signal) => signal.unit);
@@ -90,7 +93,7 @@ export async function fit(input: FitInput, options: FitOptions): Promise<FitResu
   const verdicts = judge(cast);
   const audit = auditRounding(small, cast, input.series, split);
   clock.lap('writing the candidate');
-  const parts = options.useAll ? learnFromAll(input.series, prepared, taught, small) : small.parts;
+  const parts = options.useAll ? learnFromAll(input.series, small) : small.parts;
   const document = encodeBundle(composeBundle({ ...parts, judge: judgeTable(cast, verdicts, options.override) }));
   const bundle = decodeBundle(document);
   return Object.freeze({
@@ -101,75 +104,49 @@ export async function fit(input: FitInput, options: FitOptions): Promise<FitResu
     hindcast: cast,
     audit,
     verdicts,
-    chosen: chosenOf(taught.choice, prepared.around.season.periodTicks, small.size),
+    chosen: chosenOf(small.choice, prepared, taught),
     warnings: [...prepared.warnings, ...taught.warnings],
     timings: clock.laps(),
   });
 }
 
-/** A small model within the byte limit, calibrated. */
+/** The chosen candidate, calibrated. */
 interface Small {
-  readonly size: Size;
+  readonly choice: KindChoice;
   readonly bundle: Bundle;
   readonly parts: Composition;
-  /** The same size without rounding, with the same calibration. */
+  /** The same model without rounding, with the same calibration. */
   readonly float: Model;
 }
 
 function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Prepared, taught: Taught): Small {
-  const { learned, calibrationMoments, choice } = taught;
   const around: Surroundings = {
     ...prepared.around,
-    bank: choice.bank,
+    bank: taught.choice.bank,
     coverage: options.coverage,
     boundsRate: BOUNDS_RATE,
   };
-  const open = openCalibration(around.scalings.length, around.signalCount * around.horizon);
   const names = input.series.names.slice(0, around.signalCount);
-  const draft = (size: Size): Draft => {
-    const { factors, tensors } = roundedFactors(learned, size.order, size.basisCount);
-    const judge = placeholderJudge(names, verdictSteps(around.horizon), MOST_RIVALS, options.override);
-    const settled = settledOf(split, choice, size);
-    const parts = {
-      input,
-      options,
-      around,
-      tensors,
-      calibration: open,
-      judge,
-      learnedToTick: split.learn.toTick,
-      settled,
-    };
-    return { size, factors, parts, bytes: encodeBundle(composeBundle(parts)).length };
-  };
+  const partsOf = (sections: KindSections, settled: Readonly<Record<string, unknown>>): Composition => ({
+    input,
+    options,
+    around,
+    sections,
+    calibration: openCalibration(around.scalings.length, around.signalCount * around.horizon),
+    judge: placeholderJudge(names, verdictSteps(around.horizon), MOST_RIVALS, options.override),
+    learnedToTick: split.learn.toTick,
+    settled: settledOf(split, settled),
+  });
   const limit = options.maxBytes - SIGNED_BYTES;
-  const least = { order: 1, basisCount: 1 };
-  let tensorBytes = limit - (draft(least).bytes - sizeBytes(least, learned));
-  for (let round = 0; round < MOST_ROUNDS; round++) {
-    const { size, factors, parts, bytes } = draft(chooseSize(learned, calibrationMoments, tensorBytes));
-    if (bytes > limit) {
-      tensorBytes -= bytes - limit;
-      continue;
-    }
-    const span = indices(split.calibrate, input.series);
-    const calibration = calibrate(floatModel(factors, around, open), prepared.calm, span, options.coverage);
-    const bundle = composeBundle({ ...parts, calibration });
-    const float = floatModel(floatFactors(learned, size.order, size.basisCount), around, calibration);
-    return { size, bundle, parts: { ...parts, calibration }, float };
-  }
-  throw new TrainError(
-    'fit',
-    `--max-bytes: expected room for at least one state, got ${options.maxBytes} bytes for ${names.length} signals and a horizon ` +
-      `of ${around.horizon} ticks. Raise the limit, or shorten the horizon.`,
-  );
-}
-
-/** A document of some size before calibration, to see how long it is. */
-interface Draft {
-  readonly size: Size;
-  readonly factors: Factors;
-  readonly parts: Composition;
-  readonly bytes: number;
+  const bytesLeft = (sections: KindSections): number =>
+    limit - documentBytes(partsOf(sections, { room: ' '.repeat(SETTLED_ROOM) }));
+  const { series, site } = input;
+  const choice = chooseKind({ series, site, options, split, prepared, taught, around, bytesLeft });
+  const { candidate } = choice;
+  const span = indices(split.calibrate, series);
+  const calibration = calibrate(candidate.rounded, prepared.calm, span, options.coverage);
+  const parts = { ...partsOf(candidate.sections, candidate.settled), calibration };
+  return { choice, bundle: composeBundle(parts), parts, float: withCalibration(candidate.float, calibration) };
 }
 
 function auditRounding(small: Small, cast: Hindcast, series: Series, split: Split): Audit {
@@ -183,36 +160,28 @@ function auditRounding(small: Small, cast: Hindcast, series: Series, split: Spli
 }
 
 /** Learns once more from every tick, at the size and penalties already judged; bounds stay as calibrated. */
-function learnFromAll(series: Series, prepared: Prepared, taught: Taught, small: Small): Composition {
-  const learned = teachAgain(prepared, taught, series.ticks);
-  const order = Math.min(small.size.order, learned.bottleneck.carried.length);
-  const { tensors } = roundedFactors(learned, order, small.size.basisCount);
-  return { ...small.parts, tensors, learnedToTick: series.firstTick + series.ticks };
+function learnFromAll(series: Series, { choice, parts }: Small): Composition {
+  const { sections } = choice.candidate.again(series.ticks);
+  return { ...parts, sections, learnedToTick: series.firstTick + series.ticks };
 }
 
 /** Goes into the provenance: what `hindcast` needs to know of the split, and what was chosen. */
-function settledOf(split: Split, choice: Choice, size: Size): Readonly<Record<string, unknown>> {
+function settledOf(split: Split, settled: Readonly<Record<string, unknown>>): Readonly<Record<string, unknown>> {
   const span = ({ fromTick, toTick }: TickSpan): readonly number[] => [fromTick, toTick];
-  return {
-    learn: span(split.learn),
-    calibrate: span(split.calibrate),
-    judged: span(split.judged),
-    ownPenalty: [...new Set(choice.ownPenalty)],
-    crossPenalty: [...new Set(choice.crossPenalty)],
-    order: size.order,
-    basis: size.basisCount,
-  };
+  return { learn: span(split.learn), calibrate: span(split.calibrate), judged: span(split.judged), ...settled };
 }
 
-function chosenOf(choice: Choice, periodTicks: number, size: Size): Chosen {
+function chosenOf({ candidate, tried }: KindChoice, { around }: Prepared, { choice }: Taught): Chosen {
   return {
+    kind: candidate.kind,
+    name: candidate.name,
+    order: candidate.rounded.order,
+    tried,
     ownPenalty: choice.ownPenalty,
     crossPenalty: choice.crossPenalty,
     bank: bankName(choice.bank),
     featureCount: featureCount(choice.bank),
-    periodTicks,
-    order: size.order,
-    basisCount: size.basisCount,
+    periodTicks: around.season.periodTicks,
     folds: choice.folds,
   };
 }

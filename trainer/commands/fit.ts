@@ -4,8 +4,8 @@ import { Command } from 'commander';
 import { CANDIDATE_FILES, candidateFacts, writeCandidate } from '../candidate-files.ts';
 import { fitSummary } from '../fit-summary.ts';
 import { type LoadedHistory, loadHistory } from '../history/load.ts';
-import { reason, several, share, wholeNumber } from '../option-values.ts';
-import { FIT_DEFAULTS, type FitResult, fit } from '../pipeline.ts';
+import { kindOption, reason, several, share, wholeNumber } from '../option-values.ts';
+import { FIT_DEFAULTS, type FitOptions, type FitResult, fit } from '../pipeline.ts';
 import { createProgress } from '../progress.ts';
 import { readSite } from '../site-file.ts';
 import { timeSpan } from '../time-option.ts';
@@ -21,6 +21,7 @@ interface FitCommandOptions {
   readonly calibrateShare: number;
   readonly maxBytes: number;
   readonly useAll: boolean;
+  readonly kind: FitOptions['kind'];
   readonly seed: number;
   readonly override?: string;
   readonly json: boolean;
@@ -40,6 +41,7 @@ export function fitCommand(): Command {
     .option('--calibrate-share <share>', 'share after it for penalties and bounds', share, FIT_DEFAULTS.calibrateShare)
     .option('--max-bytes <bytes>', 'largest bundle document', wholeNumber(2048, 65_536), FIT_DEFAULTS.maxBytes)
     .option('--use-all', 'after judging, learn once more from the whole history', false)
+    .addOption(kindOption())
     .option('--seed <number>', 'seed of everything drawn', wholeNumber(0, 2 ** 32 - 1), FIT_DEFAULTS.seed)
     .option('--override <reason>', 'why it may be sealed though it shows no skill; stands in the bundle', reason)
     .option('--json', 'the result as JSON', false)
@@ -64,6 +66,7 @@ async function run(options: FitCommandOptions): Promise<void> {
       maxBytes: options.maxBytes,
       coverage: FIT_DEFAULTS.coverage,
       useAll: options.useAll,
+      kind: options.kind,
       override: options.override ?? null,
       progress: () => label.update(++steps, null),
     },

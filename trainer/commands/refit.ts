@@ -3,9 +3,10 @@ import { ADVISORY, type Site } from '@stillwell/protocol';
 import { Command } from 'commander';
 import { openBundleFile } from '../bundle-file.ts';
 import { CANDIDATE_FILES, candidateFacts, writeCandidate } from '../candidate-files.ts';
+import type { FitOptions } from '../fit-options.ts';
 import { fitSummary } from '../fit-summary.ts';
 import type { History } from '../history/history.ts';
-import { reason, several, share, wholeNumber } from '../option-values.ts';
+import { kindOption, reason, several, share, wholeNumber } from '../option-values.ts';
 import { createProgress } from '../progress.ts';
 import type { RefitResult } from '../refit/refit.ts';
 import { readSite } from '../site-file.ts';
@@ -25,6 +26,7 @@ interface RefitCommandOptions {
   readonly calibrateShare?: number;
   readonly maxBytes: number;
   readonly useAll: boolean;
+  readonly kind: FitOptions['kind'];
   readonly seed: number;
   readonly override?: string;
   readonly json: boolean;
@@ -46,6 +48,7 @@ export function refitCommand(): Command {
     .option('--calibrate-share <share>', 'share after it for penalties and bounds', share)
     .option('--max-bytes <bytes>', 'largest bundle document', wholeNumber(2048, 65_536), 24 * 1024)
     .option('--no-use-all', 'ship the model as judged instead of learning once more from everything')
+    .addOption(kindOption())
     .option('--seed <number>', 'seed of everything drawn', wholeNumber(0, 2 ** 32 - 1), 1)
     .option('--override <reason>', 'why it may be sealed though it shows no skill; stands in the bundle', reason)
     .option('--json', 'the result as JSON', false)
@@ -82,6 +85,7 @@ async function run(options: RefitCommandOptions): Promise<void> {
       maxBytes: options.maxBytes,
       coverage: previous?.bundle.bounds.coverage ?? 0.9,
       useAll: options.useAll,
+      kind: options.kind,
       override: options.override ?? null,
       progress: () => progress.update(++steps, null),
     },

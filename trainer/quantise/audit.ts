@@ -3,14 +3,7 @@
  * was rounded still behaves: the bank's poles are not rounded, but the loop through the forecast is closed when readings
  * stop, so it is run with none until it must have come to rest.
  */
-import {
-  createBounds,
-  createState,
-  forecastPath,
-  intervalOf,
-  type Model,
-  update,
-} from '@stillwell/runtime/filter';
+import { createBounds, createState, forecastPath, intervalOf, type Model, update } from '@stillwell/runtime/filter';
 import { TrainError } from '../errors.ts';
 import type { Series } from '../history/series.ts';
 import { replayPaths } from '../judge/replay.ts';
@@ -26,7 +19,7 @@ export interface Audit {
 }
 
 /**
- * Standardised mean squared error of a model over a span, all signals and steps.
+ * Standardised mean squared error of a model over a span, all signals and steps; pairs in excluded time do not count.
  *
  * shapes  span of indices into the series
  * units   standardised²
@@ -35,19 +28,39 @@ export interface Audit {
  * cost    one replay
  */
 export function replayError(model: Model, series: Series, span: TickSpan): number {
+  return meanOf(replayScores(model, series, span).mse());
+}
+
+/**
+ * The same by signal.
+ *
+ * shapes  span of indices into the series; result (ny), NaN where nothing was read
+ * units   standardised²
+ * throws  FilterError if the model does not fit the series
+ * source  none
+ * cost    one replay
+ */
+export function signalErrors(model: Model, series: Series, span: TickSpan): Float64Array {
+  const { signalCount: ny, horizon: H } = model;
+  const mse = replayScores(model, series, span).mse();
+  return Float64Array.from({ length: ny }, (_, i) => meanOf(mse, i * H, (i + 1) * H));
+}
+
+function replayScores(model: Model, series: Series, span: TickSpan): Scores {
   const { signalCount: ny, horizon: H } = model;
   const scores = new Scores(ny * H);
   replayPaths(model, series, { fromTick: span.fromTick - 1, toTick: span.toTick - H }, ({ at, median }) => {
+    if (series.excluded?.isExcluded[at] === 1) return;
     for (let i = 0; i < ny; i++) {
       for (let h = 1; h <= H; h++) {
         const reading = series.values[i][at + h];
-        if (Number.isNaN(reading)) continue;
+        if (Number.isNaN(reading) || series.excluded?.isExcluded[at + h] === 1) continue;
         const clipped = Math.min(model.clipHigh[i], Math.max(model.clipLow[i], reading));
         scores.add(i * H + h - 1, (median[i * H + h - 1] - clipped) / model.scale[i]);
       }
     }
   });
-  return meanOf(scores.mse());
+  return scores;
 }
 
 /**

@@ -171,10 +171,7 @@ function record(result: FitResult): string {
       ['learned from', `${moment(learn.fromTick * tick)} to ${moment(learn.toTick * tick)}`],
       ...(isLearnedAgain(result) ? [['after judging, once more from', again]] : []),
       ['penalties and bounds from', `${moment(calibrate.fromTick * tick)} to ${moment(calibrate.toTick * tick)}`],
-      [
-        'state',
-        `${chosen.order} numbers from ${chosen.featureCount} features of the past (${escapeHtml(chosen.bank)})`,
-      ],
+      ['state', `${chosen.order} numbers; ${chosen.kind} kind, ${escapeHtml(chosen.name)}`],
       ['period', chosen.periodTicks > 0 ? spanText(chosen.periodTicks * tick) : 'none'],
       ['rounding to integers cost', `${plainNumber(100 * (audit.ratio - 1))} % of the squared error`],
       ['history digest', `<code>${hex(bundle.provenance.historyDigest)}</code>`],

@@ -1,0 +1,87 @@
+/**
+ * Which kind of model a history gets: every kind that applies is replayed, as rounded, over the calibration part, which it
+ * did not learn from, and the smallest that is as good as the best is taken.
+ */
+import { encode } from '@stillwell/protocol';
+import type { Model } from '@stillwell/runtime/filter';
+import { TrainError } from '../errors.ts';
+import { signalErrors } from '../quantise/audit.ts';
+import type { Attempt, Candidate, TryKind } from './candidate.ts';
+import { tryLinear } from './linear.ts';
+
+/** Kinds in the order in which they are tried. */
+const KINDS: Readonly<Record<Model['kind'], TryKind>> = {
+  linear: tryLinear,
+};
+
+/** A larger bundle is taken only for this gain in squared error, on geometric average over the signals. */
+const TIE = 0.002;
+
+/** One kind's result, for people. */
+export interface Tried {
+  readonly kind: Model['kind'];
+  readonly name: string;
+  /** Of its sections, in the document. */
+  readonly bytes: number;
+  /** Geometric mean over signals of its squared error over the linear kind's, or the first tried, on the calibration part. */
+  readonly error: number;
+}
+
+/** What was chosen, and what was tried. */
+export interface KindChoice {
+  readonly candidate: Candidate;
+  readonly tried: readonly Tried[];
+}
+
+/**
+ * Tries and chooses.
+ *
+ * shapes  as Attempt
+ * units   as Attempt
+ * throws  TrainError 'fit' if the kind asked for does not apply; what the kinds throw
+ * source  own choice
+ * cost    one fit and one replay of the calibration part a kind
+ */
+export function chooseKind(attempt: Attempt): KindChoice {
+  const { kind } = attempt.options;
+  const kinds = kind === 'auto' ? (Object.keys(KINDS) as Model['kind'][]) : [kind];
+  const candidates = kinds.map((one) => KINDS[one](attempt)).filter((candidate) => candidate !== null);
+  if (candidates.length === 0) {
+    throw new TrainError(
+      'options',
+      `--kind ${kind}: this history holds nothing that kind could use. Leave it to auto.`,
+      {
+        details: { kind },
+      },
+    );
+  }
+  const errors = candidates.length === 1 ? [] : candidates.map((candidate) => calibrationErrors(attempt, candidate));
+  const tried = candidates.map((candidate, k) => ({
+    kind: candidate.kind,
+    name: candidate.name,
+    bytes: encode(candidate.sections).length,
+    error: errors.length === 0 ? 1 : ratio(errors[k], errors[0]),
+  }));
+  const least = Math.min(...tried.map(({ error }) => error));
+  const good = tried.flatMap(({ error }, k) => (error <= least * (1 + TIE) ? [k] : []));
+  const smallest = good.reduce((best, k) => (tried[k].bytes < tried[best].bytes ? k : best));
+  return { candidate: candidates[smallest], tried };
+}
+
+function calibrationErrors({ split, series, prepared }: Attempt, { rounded }: Candidate): Float64Array {
+  const fromTick = split.calibrate.fromTick - series.firstTick;
+  const toTick = split.calibrate.toTick - series.firstTick;
+  return signalErrors(rounded, prepared.calm, { fromTick, toTick });
+}
+
+/** Geometric mean of ours over theirs, over the signals where both say something. */
+function ratio(ours: Float64Array, theirs: Float64Array): number {
+  let sum = 0;
+  let count = 0;
+  ours.forEach((error, i) => {
+    if (!(error > 0 && theirs[i] > 0)) return;
+    sum += Math.log(error / theirs[i]);
+    count++;
+  });
+  return count > 0 ? Math.exp(sum / count) : 1;
+}

@@ -1,0 +1,70 @@
+/**
+ * The linear kind as a candidate: the largest bank and state that fit the bytes, unless smaller ones do as well.
+ */
+import { TrainError } from '../errors.ts';
+import { bankName } from '../identify/bank.ts';
+import { chooseSize, type Size, sizeBytes } from '../identify/order.ts';
+import { teachAgain } from '../identify/teach.ts';
+import { floatModel, openCalibration } from '../quantise/float-model.ts';
+import { floatFactors, type Learned, roundedFactors } from '../quantise/quantise.ts';
+import type { Attempt, Candidate, KindSections } from './candidate.ts';
+
+/** Rounds of trying a smaller size until the document fits. */
+const MOST_ROUNDS = 4;
+
+/**
+ * The linear candidate; always applies.
+ *
+ * shapes  as Candidate
+ * units   standardised
+ * throws  TrainError 'fit' where not even one state fits the bytes
+ * source  none
+ * cost    a few factorisations
+ */
+export function tryLinear(attempt: Attempt): Candidate {
+  const { learned, calibrationMoments } = attempt.taught;
+  const least = { order: 1, basisCount: 1 };
+  const free = attempt.bytesLeft(sectionsOf(attempt, learned, least));
+  let tensorBytes = free + sizeBytes(least, learned);
+  for (let round = 0; free >= 0 && round < MOST_ROUNDS; round++) {
+    const size = chooseSize(learned, calibrationMoments, tensorBytes);
+    const left = attempt.bytesLeft(sectionsOf(attempt, learned, size));
+    if (left >= 0) return candidateOf(attempt, learned, size);
+    tensorBytes += left;
+  }
+  const { maxBytes } = attempt.options;
+  throw new TrainError(
+    'fit',
+    `--max-bytes: expected room for at least one state, got ${maxBytes} bytes for ${attempt.site.signals.length} signals and a ` +
+      `horizon of ${attempt.site.horizon} ticks, ${free < 0 ? -free : 1} too few. Raise the limit, or shorten the horizon.`,
+  );
+}
+
+function sectionsOf({ taught }: Attempt, learned: Learned, size: Size): KindSections {
+  const { decays, resonators, lags } = taught.choice.bank;
+  const { tensors } = roundedFactors(learned, size.order, size.basisCount);
+  return { kind: 'linear', linear: { decays, resonators, lags, ...tensors } };
+}
+
+function candidateOf(attempt: Attempt, learned: Learned, size: Size): Candidate {
+  const { around, taught, prepared } = attempt;
+  const { order, basisCount } = size;
+  const open = openCalibration(around.scalings.length, around.signalCount * around.horizon);
+  return {
+    kind: 'linear',
+    name: `${order} states, ${basisCount} curves, bank of ${bankName(taught.choice.bank)}`,
+    float: floatModel(floatFactors(learned, order, basisCount), around, open),
+    rounded: floatModel(roundedFactors(learned, order, basisCount).factors, around, open),
+    sections: sectionsOf(attempt, learned, size),
+    settled: {
+      ownPenalty: [...new Set(taught.choice.ownPenalty)],
+      crossPenalty: [...new Set(taught.choice.crossPenalty)],
+      order,
+      basis: basisCount,
+    },
+    again(ticks) {
+      const more = teachAgain(prepared, taught, ticks);
+      return candidateOf(attempt, more, { basisCount, order: Math.min(order, more.bottleneck.carried.length) });
+    },
+  };
+}
