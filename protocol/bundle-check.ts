@@ -48,7 +48,7 @@ const checkSections = (bundle: Bundle): void => {
 };
 
 const checkLinear = (bundle: Bundle, linear: LinearTensors, signals: number): void => {
-  const { decays, resonators, lags, featureExponents, bottleneck, readout, horizonBasis } = linear;
+  const { decays, resonators, lags, level, featureExponents, bottleneck, readout, own, horizonBasis } = linear;
   for (const [i, [re, im]] of resonators.entries()) {
     const modulus = Math.sqrt(re * re + im * im);
     if (!(modulus < 1)) refuse(`linear.resonators[${i}]`, `expected a modulus below 1, got ${modulus}`);
@@ -56,7 +56,7 @@ const checkLinear = (bundle: Bundle, linear: LinearTensors, signals: number): vo
   for (const [i, lag] of lags.entries()) {
     if (i > 0 && lag <= lags[i - 1]!) refuse(`linear.lags[${i}]`, `expected a lag above ${lags[i - 1]}, got ${lag}`);
   }
-  const features = decays.length + 2 * resonators.length + lags.length;
+  const features = decays.length + 2 * resonators.length + (level === true ? 1 : 0) + lags.length;
   if (features === 0) refuse('linear', 'expected at least one feature a channel, got none');
   const order = bottleneck.rows;
   const basis = horizonBasis.cols;
@@ -66,6 +66,8 @@ const checkLinear = (bundle: Bundle, linear: LinearTensors, signals: number): vo
   checkUnitScales(featureExponents.scales);
   checkTensor(bottleneck, order, bundle.channels.length * features, QUANTISED, 'linear.bottleneck');
   checkTensor(readout, signals * basis, order, QUANTISED, 'linear.readout');
+  const ownWidth = (1 + bundle.channels.length - signals) * features;
+  if (own !== undefined) checkTensor(own, signals * basis, ownWidth, QUANTISED, 'linear.own');
   checkTensor(horizonBasis, bundle.horizon, basis, QUANTISED, 'linear.horizonBasis');
 };
 

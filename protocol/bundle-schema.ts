@@ -34,9 +34,11 @@ export const linearSchema = z.strictObject({
   decays: z.array(share).max(64),
   resonators: z.array(z.tuple([z.number(), z.number()])).max(64),
   lags: z.array(z.int().min(1).max(MAX_LAG_TICKS)).max(64),
+  level: z.literal(true).optional(),
   featureExponents: tensorSchema,
   bottleneck: tensorSchema,
   readout: tensorSchema,
+  own: tensorSchema.optional(),
   horizonBasis: tensorSchema,
 });
 

@@ -32,12 +32,16 @@ export interface LinearTensors {
   readonly resonators: readonly (readonly [number, number])[];
   /** Ring lags in ticks, ascending, each >= 1. */
   readonly lags: readonly number[];
-  /** (nc × F) i8, scales all 1: feature k of channel c is multiplied by 2^exponent. F = decays + 2 × resonators + lags. */
+  /** One more feature a channel, the mean less the value, between resonators and lags; absent: none. */
+  readonly level?: true | undefined;
+  /** (nc × F) i8, scales all 1: feature k of channel c times 2^exponent. F = decays + 2 × resonators + level + lags. */
   readonly featureExponents: Tensor;
   /** (d × nc·F) i8: state x = W φ. */
   readonly bottleneck: Tensor;
   /** (ny·r × d) i8, row i·r + k: coefficient k of signal i is V x. */
   readonly readout: Tensor;
+  /** (ny·r × (1 + nu)·F) i8, row i·r + k: adds to it from signal i's own features, then the inputs'; absent: nothing. */
+  readonly own?: Tensor | undefined;
   /** (H × r) i16: forecast z(t+h) = z(t) + Σ_k B[h-1, k] coefficient k. */
   readonly horizonBasis: Tensor;
 }

@@ -166,6 +166,7 @@ function partSizes(bundle: Bundle): Record<string, number> {
     ...(linear === undefined
       ? {}
       : { bottleneck: linear.bottleneck, 'read-out': linear.readout, 'horizon shapes': linear.horizonBasis }),
+    ...(linear?.own === undefined ? {} : { 'own part': linear.own }),
     bounds: bundle.bounds,
     seasonal: bundle.seasonal,
     channels: bundle.channels,

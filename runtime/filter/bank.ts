@@ -1,10 +1,12 @@
 /**
  * The feature bank: what the filter remembers of one channel's past. Exponential means, damped resonators and a ring of
  * past values, all fixed beforehand, so nothing in the recursion is trained and nothing can blow up; every feature is
- * level-invariant (a constant past gives zeros), so a change of level alone moves no forecast but the level itself.
+ * level-invariant (a constant past gives zeros), so a change of level alone moves no forecast but the level itself. One
+ * more may be added for plants that return to their mean: how far the value stands from it.
  *
  *   exponential mean   e ← a e + (1 − a) z                      feature  e − z
  *   resonator          s ← c s + (1 − |c|) z, complex           features Re, Im of s − g z,  g = (1 − |c|) / (1 − c)
+ *   level              none                                      feature  − z(t)
  *   ring lag l         z(t − l)                                  feature  z(t − l) − z(t)
  *
  * Each feature is multiplied by its power of two and clipped to ±FEATURE_LIMIT, so no past whatever makes a forecast
@@ -148,6 +150,10 @@ export function writeFeatures(
   for (let k = 0; k < bank.resonatorCount; k++, m += 2, f += 2) {
     out[f] = (memory[m] - bank.steadyRe[k] * value) * scale[f];
     out[f + 1] = (memory[m + 1] - bank.steadyIm[k] * value) * scale[f + 1];
+  }
+  if (model.level === true) {
+    out[f] = -value * scale[f];
+    f++;
   }
   const start = channel * bank.ringLength;
   for (let k = 0; k < model.lags.length; k++, f++) {

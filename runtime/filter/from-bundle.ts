@@ -58,16 +58,19 @@ function commonOf(bundle: Bundle): Omit<CommonModel, 'order'> {
 /** The bank and the tensors around it. */
 function bankOf(linear: LinearTensors): Omit<BankModel, Exclude<keyof CommonModel, 'order'>> {
   return {
-    featureCount: linear.decays.length + 2 * linear.resonators.length + linear.lags.length,
+    featureCount:
+      linear.decays.length + 2 * linear.resonators.length + (linear.level === true ? 1 : 0) + linear.lags.length,
     order: linear.bottleneck.rows,
     basisCount: linear.horizonBasis.cols,
     decays: Float64Array.from(linear.decays),
     resonatorRe: Float64Array.from(linear.resonators, ([re]) => re),
     resonatorIm: Float64Array.from(linear.resonators, ([, im]) => im),
     lags: Int32Array.from(linear.lags),
+    ...(linear.level === true ? { level: true } : {}),
     featureScale: powersOfTwo(linear.featureExponents),
     bottleneck: dequantise(linear.bottleneck),
     readout: dequantise(linear.readout),
+    ...(linear.own === undefined ? {} : { own: dequantise(linear.own) }),
     horizonBasis: dequantise(linear.horizonBasis),
   };
 }

@@ -1,5 +1,7 @@
 /**
- * The linear kind: bank → features φ → state x = W φ → coefficients V x → path z(t) + B V x.
+ * The linear kind: bank → features φ → state x = W φ → coefficients c = V x → path z(t) + B c. Where the model has an own
+ * part, each signal's coefficients take in its own features and the inputs' directly, and the state carries what signals
+ * say of each other.
  */
 import { advanceChannel, type BankConstants, bankConstants, settleChannel, writeFeatures } from './bank.ts';
 import { multiply } from './dense.ts';
@@ -26,12 +28,22 @@ export interface LinearCore extends Core {
   readonly features: Float64Array;
   /** (ny·r) */
   readonly coefficients: Float64Array;
+  /** (ny) of (r × (1 + nu)·F): each signal's rows of the own part; none without one. */
+  readonly ownRows: readonly Float64Array[];
+  /** ((1 + nu)·F) features of one signal and of the inputs. */
+  readonly ownPast: Float64Array;
+  /** (r) */
+  readonly ownPart: Float64Array;
 }
 
 /** Buffers before the first tick. */
 export function createLinearCore(model: BankModel): LinearCore {
   const nc = model.channelCount;
   const bank = bankConstants(model);
+  const { own, signalCount: ny, basisCount: r } = model;
+  const width = (1 + nc - ny) * model.featureCount;
+  const ownRows: Float64Array[] = [];
+  if (own !== undefined) for (let i = 0; i < ny; i++) ownRows.push(own.subarray(i * r * width, (i + 1) * r * width));
   return {
     bank,
     memory: new Float64Array(nc * bank.memoryCount),
@@ -39,7 +51,10 @@ export function createLinearCore(model: BankModel): LinearCore {
     ringAt: 0,
     features: new Float64Array(nc * model.featureCount),
     x: new Float64Array(model.order),
-    coefficients: new Float64Array(model.signalCount * model.basisCount),
+    coefficients: new Float64Array(ny * r),
+    ownRows,
+    ownPast: new Float64Array(own === undefined ? 0 : width),
+    ownPart: new Float64Array(own === undefined ? 0 : r),
   };
 }
 
@@ -55,7 +70,7 @@ function pushRing(model: BankModel, core: LinearCore, state: FilterState): void 
  * Works out features, predictive state and forecast coefficients from the memories.
  *
  * shapes  features (nc·F), x (d), coefficients (ny·r)
- * cost    O(d · nc·F + ny·r · d); allocates nothing
+ * cost    O(d · nc·F + ny·r · d), and O(ny·r · (1 + nu)·F) for an own part; allocates nothing
  */
 function refreshLinear(model: BankModel, core: LinearCore, state: FilterState): void {
   const { bank, memory, ring, ringAt, features } = core;
@@ -64,6 +79,21 @@ function refreshLinear(model: BankModel, core: LinearCore, state: FilterState): 
   }
   multiply(model.bottleneck, model.order, features.length, features, 0, core.x, 0);
   multiply(model.readout, core.coefficients.length, model.order, core.x, 0, core.coefficients, 0);
+  if (core.ownRows.length > 0) addOwnPart(model, core);
+}
+
+/** Adds each signal's own part to its coefficients. */
+function addOwnPart(model: BankModel, core: LinearCore): void {
+  const { ownRows, ownPast, ownPart, features, coefficients } = core;
+  const F = model.featureCount;
+  const inputsAt = model.signalCount * F;
+  for (let f = F; f < ownPast.length; f++) ownPast[f] = features[inputsAt + f - F];
+  for (let i = 0; i < ownRows.length; i++) {
+    for (let f = 0; f < F; f++) ownPast[f] = features[i * F + f];
+    multiply(ownRows[i], ownPart.length, ownPast.length, ownPast, 0, ownPart, 0);
+    const at = i * ownPart.length;
+    for (let k = 0; k < ownPart.length; k++) coefficients[at + k] += ownPart[k];
+  }
 }
 
 /**
@@ -136,11 +166,12 @@ function checkBankModel(model: BankModel): void {
   const nc = model.channelCount;
   requireWhole(basisCount, 'basisCount', 1, 4096);
   requireLength(resonatorIm, 'resonatorIm', resonatorRe.length);
-  const features = decays.length + resonatorRe.length + resonatorIm.length + lags.length;
+  const levels = model.level === true ? 1 : 0;
+  const features = decays.length + resonatorRe.length + resonatorIm.length + levels + lags.length;
   requireField(
     features === featureCount && features > 0,
     'featureCount',
-    `decays + 2 × resonators + lags = ${features}, above 0`,
+    `decays + 2 × resonators + level + lags = ${features}, above 0`,
     featureCount,
   );
   requireLength(model.featureScale, 'featureScale', nc * featureCount);
@@ -163,6 +194,9 @@ function checkBankModel(model: BankModel): void {
     'a finite number above 0',
   );
   for (const name of ['bottleneck', 'readout', 'horizonBasis'] as const) requireWeights(model[name], name);
+  if (model.own === undefined) return;
+  requireLength(model.own, 'own', model.signalCount * basisCount * (1 + nc - model.signalCount) * featureCount);
+  requireWeights(model.own, 'own');
 }
 
 /** The kernel of the linear kind; kinds that build on the bank take it up piece by piece. */

@@ -56,12 +56,16 @@ export interface BankModel extends CommonModel {
   readonly resonatorIm: Float64Array;
   /** Ascending, ticks. */
   readonly lags: Int32Array;
-  /** (nc × F) multiplies each raw feature; powers of two. Feature order: decays, resonators (re, im, re, im …), lags. */
+  /** One more feature a channel, the mean less the value; absent: none. */
+  readonly level?: boolean;
+  /** (nc × F) multiplies each raw feature; powers of two. Order: decays, resonators (re, im, re, im …), level, lags. */
   readonly featureScale: Float64Array;
   /** (d × nc·F) */
   readonly bottleneck: Float64Array;
   /** (ny·r × d), row i·r + k */
   readonly readout: Float64Array;
+  /** (ny·r × (1 + nu)·F), row i·r + k: coefficient k from signal i's own features, then the inputs'; absent: none. */
+  readonly own?: Float64Array;
   /** (H × r) */
   readonly horizonBasis: Float64Array;
 }

@@ -161,6 +161,20 @@ describe('a bundle document is refused', () => {
       'linear.readout: expected 6 × 4, got 6 × 5',
     ],
     [
+      'with an own part that leaves the input out',
+      ['linear', 'own'],
+      tensor(6, 8),
+      'tensor',
+      'linear.own: expected 6 × 16, got 6 × 8',
+    ],
+    [
+      'with the level and tensors without it',
+      ['linear', 'level'],
+      true,
+      'tensor',
+      'linear.featureExponents: expected 3 × 9, got 3 × 8',
+    ],
+    [
       'with a basis of another horizon',
       ['linear', 'horizonBasis'],
       tensor(7, 3, 'i16'),

@@ -21,6 +21,10 @@ export interface ModelChoice {
   readonly decays?: readonly number[];
   readonly resonators?: readonly (readonly [number, number])[];
   readonly lags?: readonly number[];
+  /** With the level as one more feature. */
+  readonly level?: true;
+  /** With an own part. */
+  readonly own?: true;
   readonly seasonalPeriod?: number;
   readonly seasonalBins?: number;
   readonly coverage?: number;
@@ -62,7 +66,8 @@ export function syntheticBundle(choice: ModelChoice = {}): Bundle {
   const lags = choice.lags ?? [1, 2, 3, 23, 24, 25];
   const nc = signals.length + inputs.length;
   const ny = signals.length;
-  const F = decays.length + 2 * resonators.length + lags.length;
+  const F = decays.length + 2 * resonators.length + (choice.level === true ? 1 : 0) + lags.length;
+  const ownWidth = (1 + nc - ny) * F;
   const bins = choice.seasonalBins ?? 24;
   const integers = (count: number, size: number): number[] =>
     Array.from({ length: count }, () => Math.round((2 * random() - 1) * size));
@@ -82,10 +87,14 @@ export function syntheticBundle(choice: ModelChoice = {}): Bundle {
       decays,
       resonators,
       lags,
+      ...(choice.level === true ? { level: true as const } : {}),
       featureExponents: integerTensor('i8', nc, F, integers(nc * F, 2), rows(nc, 1)),
       bottleneck: integerTensor('i8', d, nc * F, integers(d * nc * F, 127), rows(d, 0.3 / 127 / Math.sqrt(nc * F))),
       readout: integerTensor('i8', ny * r, d, integers(ny * r * d, 127), rows(ny * r, 0.3 / 127 / Math.sqrt(d))),
       horizonBasis: integerTensor('i16', horizon, r, integers(horizon * r, 32767), rows(horizon, 1 / 32767)),
+      ...(choice.own === true
+        ? { own: integerTensor('i8', ny * r, ownWidth, integers(ny * r * ownWidth, 127), rows(ny * r, 1e-3 / 127)) }
+        : {}),
     },
     seasonal: {
       periodTicks: choice.seasonalPeriod ?? 24,

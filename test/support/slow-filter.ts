@@ -33,19 +33,23 @@ export function slowFeatures(model: LinearModel, z: readonly number[], channel: 
     }
     raw.push(sumRe, sumIm);
   });
+  if (model.level === true) raw.push(-now);
   for (const lag of model.lags) raw.push(at(t - lag) - now);
   return raw.map((feature, k) => feature * model.featureScale[channel * model.featureCount + k]);
 }
 
 /** Unclipped path of one signal in standardised units, from the features of all channels and the value of the signal now. */
 export function slowPath(model: LinearModel, features: readonly number[], signal: number, now: number): number[] {
-  const { order, basisCount, horizon } = model;
+  const { order, basisCount, horizon, featureCount: F, own } = model;
   const x = Array.from({ length: order }, (_, s) =>
     features.reduce((sum, feature, f) => sum + feature * model.bottleneck[s * features.length + f], 0),
   );
-  const coefficients = Array.from({ length: basisCount }, (_, k) =>
-    x.reduce((sum, value, s) => sum + value * model.readout[(signal * basisCount + k) * order + s], 0),
-  );
+  const past = [...features.slice(signal * F, (signal + 1) * F), ...features.slice(model.signalCount * F)];
+  const coefficients = Array.from({ length: basisCount }, (_, k) => {
+    const row = signal * basisCount + k;
+    const joint = x.reduce((sum, value, s) => sum + value * model.readout[row * order + s], 0);
+    return own === undefined ? joint : past.reduce((sum, value, f) => sum + value * own[row * past.length + f], joint);
+  });
   return Array.from({ length: horizon }, (_, h) =>
     coefficients.reduce((sum, value, k) => sum + value * model.horizonBasis[h * basisCount + k], now),
   );

@@ -23,8 +23,11 @@ const pathOf = (model: LinearModel, state: FilterState): Float64Array => {
   return median;
 };
 
-describe('second route: direct convolution over the whole past', () => {
-  const model = syntheticModel({ inputs: ['valve'], seed: 5 });
+describe.each([
+  ['plain', {}],
+  ['with an own part and the level', { own: true, level: true }],
+] as const)('second route: direct convolution over the whole past, %s', (_, more) => {
+  const model = syntheticModel({ inputs: ['valve'], seed: 5, ...more });
 
   test.each([1, 2, 30, 200])('features and path agree after %i ticks', (ticks) => {
     const readings = syntheticReadings(model, ticks, 7);
@@ -50,6 +53,13 @@ describe('second route: direct convolution over the whole past', () => {
     const past = readings.map((values) => (values[0] - model.mean[0]) / model.scale[0]);
     const wrong = slowFeatures({ ...model, lags: Int32Array.of(2, 3, 4, 23, 24, 25) }, past, 0);
     expect(wrong.some((feature, k) => Math.abs(feature - linearCore(state).features[k]) > 1e-3)).toBe(true);
+  });
+
+  test('the comparison notices an own part left out', () => {
+    const readings = syntheticReadings(model, 50, 7);
+    const { own, ...without } = model;
+    const apart = pathOf(model, run(model, readings)).map((y, k) => y - pathOf(without, run(without, readings))[k]);
+    expect(apart.some((value) => Math.abs(value) > 1e-3)).toBe(own !== undefined);
   });
 });
 

@@ -60,6 +60,8 @@ describe('checkModel refuses', () => {
     ['readout[0]', { readout: bad(model.readout, 0, Number.POSITIVE_INFINITY) }],
     ['horizonBasis', { horizon: 25 }],
     ['featureCount', { featureCount: 7 }],
+    ['featureCount', { level: true }],
+    ['own', { own: new Float64Array(3) }],
     ['scale[1]', { scale: bad(model.scale, 1, 0) }],
     ['latticeStep[0]', { latticeStep: bad(model.latticeStep, 0, -1) }],
     ['clipHigh[0]', { clipHigh: bad(model.clipHigh, 0, -100) }],
