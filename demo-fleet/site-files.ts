@@ -97,5 +97,6 @@ export function siteText(description: SiteDescription): string {
     signals: of('signal').map(channel),
     inputs: of('input').map((one) => ({ ...channel(one), planTopic: null })),
     calendar: { timeOfDay: true, dayOfWeek: false, holidays: [] },
+    exclude: [],
   });
 }

@@ -5,6 +5,7 @@
 import { Document, isMap, isNode, isScalar, isSeq } from 'yaml';
 import { formatDuration } from './duration.ts';
 import type { Input, PayloadReading, Signal, Site } from './site.ts';
+import { plainExclusion } from './site-exclude.ts';
 
 const plainPayload = (how: PayloadReading): unknown => {
   if (how.kind === 'number') return 'number';
@@ -48,6 +49,7 @@ const plainSite = (site: Site): Record<string, unknown> =>
       day_of_week: site.calendar.dayOfWeek,
       holidays: site.calendar.holidays,
     },
+    exclude: site.exclude.length === 0 ? null : site.exclude.map(plainExclusion),
   });
 
 /** "signals[0].limits.high" as steps. */
@@ -79,6 +81,12 @@ export const formatSite = (site: Site, comments: Readonly<Record<string, string>
         const node: unknown = document.getIn([list, i, key], true);
         if (isMap(node) || isSeq(node)) node.flow = true;
       }
+    }
+  }
+  for (let i = 0; i < site.exclude.length; i++) {
+    for (const key of ['when', 'signals']) {
+      const node: unknown = document.getIn(['exclude', i, key], true);
+      if (isMap(node) || isSeq(node)) node.flow = true;
     }
   }
   for (const [path, text] of Object.entries(comments)) {

@@ -11,6 +11,7 @@ import { isName, NAME_RULE } from './name.ts';
 import { nearestName } from './nearest.ts';
 import { isPointer } from './pointer.ts';
 import type { Aggregate, PayloadReading } from './site.ts';
+import { excludeEntrySchema, excludeSchema, whenSchema } from './site-exclude.ts';
 import { checkTopicFilter } from './topics.ts';
 
 /** A value read by hand, so that the refusal can say what would have been right. `read` gives undefined to refuse. */
@@ -218,6 +219,7 @@ export const siteFileSchema = z.strictObject({
   signals: z.array(signalSchema).min(1).max(MAX_SIGNALS),
   inputs: z.array(inputSchema).max(MAX_CHANNELS).nullish(),
   calendar: calendarSchema.nullish(),
+  exclude: excludeSchema.nullish(),
 });
 
 /** A site file that passed its schema, before defaults. */
@@ -228,6 +230,7 @@ export const siteFileKeys = (path: readonly PropertyKey[]): readonly string[] =>
   const [first, , third] = path;
   if (path.length === 0) return Object.keys(siteFileSchema.shape);
   if (first === 'calendar') return Object.keys(calendarSchema.shape);
+  if (first === 'exclude') return Object.keys((third === 'when' ? whenSchema : excludeEntrySchema).shape);
   if (third === 'limits') return Object.keys(limitsSchema.shape);
   if (third === 'payload') return PAYLOAD_KEYS;
   if (first === 'inputs') return Object.keys(inputSchema.shape);

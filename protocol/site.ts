@@ -8,6 +8,7 @@ import { type Fault, formatFault, listFaults } from './issue.ts';
 import { MAX_SITE_FILE_BYTES } from './limits.ts';
 import { formatPath } from './path.ts';
 import { crossFaults } from './site-check.ts';
+import { type Exclusion, excludeFaults, toExclusion } from './site-exclude.ts';
 import { type SiteFile, siteFileKeys, siteFileSchema } from './site-schema.ts';
 
 /** How a tick makes one value of the readings that fall into it. */
@@ -73,6 +74,8 @@ export interface Site {
   readonly signals: readonly Signal[];
   readonly inputs: readonly Input[];
   readonly calendar: Calendar;
+  /** Time that must not teach; for the trainer alone. */
+  readonly exclude: readonly Exclusion[];
 }
 
 /** First topic level of ours unless the site file says otherwise. */
@@ -124,6 +127,7 @@ const toSite = (file: SiteFile): Site => ({
     dayOfWeek: file.calendar?.day_of_week ?? true,
     holidays: file.calendar?.holidays ?? [],
   },
+  exclude: (file.exclude ?? []).map(toExclusion),
 });
 
 const fileFault = (fileName: string, lines: LineCounter, offset: number, text: string, path = ''): ProtocolError => {
@@ -205,6 +209,10 @@ export const parseSite = (text: string, fileName = 'site file'): Site => {
   const plain = toPlain(document, fileName, lines);
   const parsed = siteFileSchema.safeParse(plain);
   if (!parsed.success) throw siteFault(fileName, lines, document, listFaults(parsed.error, plain, siteFileKeys));
+  const { signals, inputs, exclude } = parsed.data;
+  const names = [...signals, ...(inputs ?? [])].map((entry) => entry.name);
+  const misfits = excludeFaults(exclude ?? [], names);
+  if (misfits.length > 0) throw siteFault(fileName, lines, document, misfits);
   const site = toSite(parsed.data);
   const faults = crossFaults(site);
   if (faults.length > 0) throw siteFault(fileName, lines, document, faults);

@@ -3,6 +3,7 @@
  */
 import type { Site } from '@stillwell/protocol';
 import { TrainError } from './errors.ts';
+import { ticksLeft } from './exclusions.ts';
 import type { Series } from './history/series.ts';
 import type { TickSpan } from './span.ts';
 
@@ -84,9 +85,26 @@ export function splitHistory(series: Series, site: Site, asked: Asked): Split {
   const from = series.firstTick;
   const learnEnd = from + Math.round(asked.learnShare * series.ticks);
   const calibrateEnd = learnEnd + Math.round(asked.calibrateShare * series.ticks);
-  return {
+  const split = {
     learn: { fromTick: from, toTick: learnEnd },
     calibrate: { fromTick: learnEnd, toTick: calibrateEnd },
     judged: { fromTick: calibrateEnd, toTick: from + series.ticks },
   };
+  refuseExcluded(series, split.learn, 'learn from', least(LEAST_LEARN));
+  refuseExcluded(series, split.calibrate, 'calibrate by', least(LEAST_OTHER));
+  refuseExcluded(series, split.judged, 'judge by', least(LEAST_OTHER));
+  return split;
+}
+
+/** Too much excluded is like too short a history, but mended elsewhere. */
+function refuseExcluded(series: Series, part: TickSpan, use: string, needed: number): void {
+  if (series.excluded === undefined) return;
+  const left = ticksLeft(series, part.fromTick - series.firstTick, part.toTick - series.firstTick);
+  if (left >= needed) return;
+  throw new TrainError(
+    'history',
+    `The site file's exclude leaves ${left} of the ${part.toTick - part.fromTick} ticks to ${use}; expected at least ${needed}. ` +
+      'Exclude less, give a longer history, or shift the parts with --learn-share and --calibrate-share.',
+    { details: { left, needed } },
+  );
 }

@@ -4,6 +4,7 @@ import { formatDuration, parseDuration } from '../../protocol/duration.ts';
 import { isName, toName } from '../../protocol/name.ts';
 import { nearestName } from '../../protocol/nearest.ts';
 import { type Input, type Limits, parseSite, type Signal, type Site } from '../../protocol/site.ts';
+import type { Exclusion } from '../../protocol/site-exclude.ts';
 import { formatSite } from '../../protocol/site-format.ts';
 
 const SEED = 20260308;
@@ -42,6 +43,28 @@ const signal: fc.Arbitrary<Signal> = record({
 const input: fc.Arbitrary<Input> = fc
   .tuple(signal, fc.constantFrom(null, 'plan/x'))
   .map(([one, planTopic]) => ({ ...one, planTopic }));
+/** Names of signals are put in later, once they are known. */
+const reasoned = {
+  reason: fc.string({ unit: 'grapheme', minLength: 1, maxLength: 20 }),
+  signals: fc.constantFrom(null, []),
+};
+const exclusion: fc.Arbitrary<Exclusion> = fc.oneof(
+  record({
+    ...reasoned,
+    fromMs: fc.integer({ min: 0, max: 2e12 }),
+    toMs: fc.integer({ min: 2e12 + 1, max: 4e12 }),
+  }),
+  record({
+    ...reasoned,
+    when: record({
+      signal: fc.constant(''),
+      is: fc.constantFrom('above', 'below', 'equals'),
+      level: fc.double({ min: -1e6, max: 1e6, noNaN: true }).map((level) => level + 0),
+    }),
+    beforeMs: fc.nat(1e7),
+    afterMs: fc.nat(1e7),
+  }),
+);
 const site: fc.Arbitrary<Site> = record({
   site: name,
   equipmentClass: name,
@@ -58,6 +81,7 @@ const site: fc.Arbitrary<Site> = record({
     dayOfWeek: fc.boolean(),
     holidays: fc.subarray(['2026-01-01', '2026-12-25']),
   }),
+  exclude: fc.array(exclusion, { maxLength: 3 }),
 }).map((one) => {
   // Names and readings must be distinct: number the names, keep a topic on the first channel alone.
   const own = <T extends Signal>(channel: T, i: number): T => ({
@@ -65,10 +89,17 @@ const site: fc.Arbitrary<Site> = record({
     name: toName(`${Array.from(channel.name).slice(0, 5).join('')}_${i}`),
     topic: i === 0 ? channel.topic : null,
   });
+  const signals = one.signals.map(own);
+  const { name } = signals[0]!;
   return {
     ...one,
-    signals: one.signals.map(own),
+    signals,
     inputs: one.inputs.map((channel, i) => own(channel, i + one.signals.length)),
+    exclude: one.exclude.map((entry) => ({
+      ...entry,
+      signals: entry.signals === null ? null : [name],
+      ...('when' in entry ? { when: { ...entry.when, signal: name } } : {}),
+    })),
   };
 });
 

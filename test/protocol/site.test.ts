@@ -55,6 +55,7 @@ describe('a good site file', () => {
         },
       ],
       calendar: { timeOfDay: true, dayOfWeek: true, holidays: ['2026-12-25'] },
+      exclude: [],
     });
     expect(Object.isFrozen(site.signals[0]!.limits)).toBe(true);
   });

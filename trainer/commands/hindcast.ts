@@ -4,6 +4,7 @@ import { ADVISORY, describeSchemaDifference } from '@stillwell/protocol';
 import { Command } from 'commander';
 import { openBundleFile } from '../bundle-file.ts';
 import { TrainError } from '../errors.ts';
+import { believe, excludedNotes } from '../exclusions.ts';
 import { readHistory } from '../history/read.ts';
 import type { Series } from '../history/series.ts';
 import { layOnTicks } from '../history/ticks.ts';
@@ -69,10 +70,13 @@ async function run(options: HindcastOptions): Promise<void> {
   });
   progress.end();
   // On the bundle's lattices, as the gateway would take them, whatever this history alone would show.
-  const series = layOnTicks(
-    history,
-    site,
-    bundle.channels.map((channel) => channel.lattice),
+  const { seen, mark } = believe(history, site);
+  const series = mark(
+    layOnTicks(
+      seen,
+      site,
+      bundle.channels.map((channel) => channel.lattice),
+    ),
   );
   const learned = learnedSpans(bundle);
   const fromTick = fromMs === undefined ? learned.seenTo : Math.ceil(fromMs / series.tickMs);
@@ -90,8 +94,14 @@ async function run(options: HindcastOptions): Promise<void> {
   process.stdout.write(
     options.json
       ? `${JSON.stringify({ ...head, ...hindcastJson(cast) }, null, 2)}\n`
-      : `${tableText(cast)}\n${seenText(seenShare)}\n${ADVISORY}\n`,
+      : `${tableText(cast)}\n${seenText(seenShare)}${notesText(series)}\n${ADVISORY}\n`,
   );
+}
+
+function notesText(series: Series): string {
+  return excludedNotes(series)
+    .map((note) => `Note: ${note}\n`)
+    .join('');
 }
 
 function seenText(share: number): string {

@@ -2,6 +2,7 @@
  * A history from files to ticks, surveyed: the one door for every command that learns from or scores on history.
  */
 import type { Site } from '@stillwell/protocol';
+import { believe } from '../exclusions.ts';
 import type { History } from './history.ts';
 import { type ReadOptions, readHistory } from './read.ts';
 import { type FoundLattice, findLattices } from './resolution.ts';
@@ -17,11 +18,16 @@ export interface LoadedHistory {
   readonly lattices: readonly FoundLattice[];
 }
 
-/** Lays a history on ticks and surveys it; throws TrainError 'history' as layOnTicks does. */
+/**
+ * Lays a history on ticks, excluded time told apart, and surveys it as it came; throws TrainError 'history' as layOnTicks
+ * does.
+ */
 export function prepare(history: History, site: Site): LoadedHistory {
-  const lattices = findLattices(history, site);
-  const series = layOnTicks(history, site, lattices);
-  return { history, series, lattices, survey: surveyHistory(history, series, site, lattices) };
+  const { seen, taught, mark } = believe(history, site);
+  const lattices = findLattices(taught, site);
+  const laid = layOnTicks(history, site, lattices);
+  const series = mark(seen === history ? laid : layOnTicks(seen, site, lattices));
+  return { history, series, lattices, survey: surveyHistory(history, laid, site, lattices) };
 }
 
 /**

@@ -149,6 +149,7 @@ export async function draftSite(files: readonly string[], options: DraftOptions)
     signals,
     inputs: [],
     calendar: { timeOfDay: true, dayOfWeek: true, holidays: [] },
+    exclude: [],
   };
   const progress = options.progress === undefined ? {} : { progress: options.progress };
   const history = await readHistory(files, rough, { zone: options.zone, requireZone: true, ...progress });

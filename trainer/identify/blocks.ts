@@ -1,8 +1,9 @@
 /**
  * How the learning and calibration parts are cut for rolling origins: consecutive groups of origins, each a horizon short
  * of the next, so that no future used for learning lies in the group that judges it. Origins that would look into a long
- * gap are left out.
+ * gap or into excluded time are left out.
  */
+import { EXCLUDED, LONG_GAP } from './fill.ts';
 import type { Block } from './moments.ts';
 
 /** The cut. All blocks together are disjoint. */
@@ -23,7 +24,7 @@ const GROUP_HORIZONS = 3;
 /**
  * Cuts learning and calibration parts.
  *
- * shapes  inLongGap (ticks); settle the first origin's index
+ * shapes  inLongGap (ticks) as Filled has it; settle the first origin's index
  * units   ticks
  * throws  RangeError if the learning part holds no origin
  * source  rolling origin: Tashman, International Journal of Forecasting 16 (2000)
@@ -36,10 +37,10 @@ export function partition(
   horizon: number,
   inLongGap: Uint8Array,
 ): Partition {
-  const usable = usableOrigins(inLongGap, horizon, learnTicks + calibrateTicks);
-  const share = usable.reduce((sum, value) => sum + value, 0) / usable.length;
-  const usesLongGaps = share < 0.5;
-  if (usesLongGaps) usable.fill(1);
+  const outsideGaps = usableOrigins(inLongGap, horizon, learnTicks + calibrateTicks, LONG_GAP);
+  const allowed = usableOrigins(inLongGap, horizon, learnTicks + calibrateTicks, EXCLUDED);
+  const usesLongGaps = count(outsideGaps) < 0.5 * count(allowed);
+  const usable = usesLongGaps ? allowed : outsideGaps;
   const total = learnTicks - settle + calibrateTicks;
   const groups = Math.max(2, Math.min(MOST_GROUPS, Math.floor(total / (GROUP_HORIZONS * horizon + 8))));
   const learnGroups = Math.max(1, Math.min(groups - 1, Math.round((groups * (learnTicks - settle)) / total)));
@@ -63,25 +64,31 @@ export function partition(
 /**
  * Blocks of all usable origins of a span, for a fit without folds.
  *
- * shapes  inLongGap (ticks)
+ * shapes  inLongGap (ticks) as Filled has it
  * units   indices; the last origin has the whole horizon before `end`
  * throws  nothing
  * source  none
  * cost    O(T)
  */
 export function usableBlocks(from: number, end: number, horizon: number, inLongGap: Uint8Array): Block[] {
-  return runs(usableOrigins(inLongGap, horizon, end), from, end - horizon);
+  const outsideGaps = runs(usableOrigins(inLongGap, horizon, end, LONG_GAP), from, end - horizon);
+  if (outsideGaps.length > 0) return outsideGaps;
+  return runs(usableOrigins(inLongGap, horizon, end, EXCLUDED), from, end - horizon);
 }
 
-/** (ticks) 1 where neither the origin nor its future lies in a long gap. */
-function usableOrigins(inLongGap: Uint8Array, horizon: number, ticks: number): Uint8Array {
+/** (ticks) 1 where neither the origin nor its future lies in time marked `least` or above. */
+function usableOrigins(inLongGap: Uint8Array, horizon: number, ticks: number, least: number): Uint8Array {
   const usable = new Uint8Array(ticks);
   let nextGap = Number.POSITIVE_INFINITY;
   for (let t = Math.min(inLongGap.length, ticks) - 1; t >= 0; t--) {
-    if (inLongGap[t] === 1) nextGap = t;
+    if (inLongGap[t] >= least) nextGap = t;
     usable[t] = nextGap > t + horizon ? 1 : 0;
   }
   return usable;
+}
+
+function count(flags: Uint8Array): number {
+  return flags.reduce((sum, flag) => sum + flag, 0);
 }
 
 function runs(usable: Uint8Array, from: number, to: number): Block[] {

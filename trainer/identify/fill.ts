@@ -13,9 +13,14 @@ export interface Filled {
   readonly values: readonly Float64Array[];
   /** (nc) of (ticks): 1 where a reading stood. */
   readonly isRead: readonly Uint8Array[];
-  /** (ticks): 1 where a signal is inside a long gap. */
+  /** (ticks): LONG_GAP where a signal is inside a long gap, EXCLUDED where the time must not teach, else 0. */
   readonly inLongGap: Uint8Array;
 }
+
+/** Mark of `inLongGap`: learned from only where too little else is left. */
+export const LONG_GAP = 1;
+/** Mark of `inLongGap`: never learned from. */
+export const EXCLUDED = 2;
 
 /** Where the parts of a history end, in ticks from its start: what lies beyond one must not show before it. */
 export interface PartEnds {
@@ -55,6 +60,9 @@ export function fillHistory(
     fillGaps(z, read, period, longGapTicks, ends, c < series.signalCount ? inLongGap : null);
     return z;
   });
+  series.excluded?.isExcluded.forEach((flag, t) => {
+    if (flag === 1) inLongGap[t] = EXCLUDED;
+  });
   return { values, isRead, inLongGap };
 }
 
@@ -74,7 +82,7 @@ function fillGaps(
     const isLong = end - t >= longGapTicks;
     if (isLong) {
       profile ??= phaseMeans(z.subarray(0, learnTicks), read, period);
-      inLongGap?.fill(1, t, end);
+      inLongGap?.fill(LONG_GAP, t, end);
     }
     const isAcross = [learnTicks, calibrateEnd].some((edge) => t < edge && end >= edge);
     bridge(z, t, end, isLong ? profile : null, !isAcross && end < z.length);

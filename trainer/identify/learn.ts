@@ -78,8 +78,7 @@ export function learn(input: LearnInput): LearnOutput {
 export function learnAgain(input: LearnInput, choice: Choice, ticks: number): Learned {
   const layout = layoutOf(input, choice.bank);
   const settle = Math.min(settlingTicks(choice.bank), Math.floor(ticks / 8));
-  let blocks = usableBlocks(settle, ticks, input.horizon, input.filled.inLongGap);
-  if (blocks.length === 0) blocks = [{ fromIndex: Math.max(1, settle), toIndex: ticks - input.horizon }];
+  const blocks = usableBlocks(settle, ticks, input.horizon, input.filled.inLongGap);
   return mapAndDirections(addMoments(gather(input, choice.bank, blocks)), layout, choice);
 }
 

@@ -2,6 +2,7 @@
  * A history made ready for learning: scaled, completed, its period and seasonal means found; and what was odd about it.
  */
 import type { Signal, Site } from '@stillwell/protocol';
+import { excludedNotes, withoutExcluded } from '../exclusions.ts';
 import { channelsOf } from '../history/channels.ts';
 import type { Series } from '../history/series.ts';
 import type { Surroundings } from '../quantise/float-model.ts';
@@ -16,7 +17,7 @@ import { seasonOf } from './season.ts';
 /** Ready for learning. */
 export interface Prepared {
   readonly around: Omit<Surroundings, 'bank' | 'coverage' | 'boundsRate'>;
-  /** The history without its wild readings: what is learned and calibrated from. */
+  /** The history without its wild readings and excluded time: what is learned and calibrated from. */
   readonly calm: Series;
   readonly filled: Filled;
   readonly learnTicks: number;
@@ -37,11 +38,12 @@ const LEAST_LONG_GAP = 6;
  * cost    O(nc T log T)
  */
 export function prepareHistory(
-  series: Series,
+  seen: Series,
   site: Site,
   lattices: readonly { readonly step: number; readonly offset: number }[],
   split: Split,
 ): Prepared {
+  const series = withoutExcluded(seen);
   const learnTicks = split.learn.toTick - split.learn.fromTick;
   const calibrateTicks = split.calibrate.toTick - split.calibrate.fromTick;
   const steps = lattices.map((lattice) => lattice.step);
@@ -70,6 +72,7 @@ export function prepareHistory(
     learnTicks,
     calibrateTicks,
     warnings: [
+      ...excludedNotes(seen),
       ...warningsOf(series, scalings, period),
       ...excursionWarnings(series, excursions, ends),
       ...silentWhereBoundsAreSet(series, ends),

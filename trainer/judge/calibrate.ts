@@ -1,6 +1,6 @@
 /**
  * What the bounds and the spike guard start from: errors of the rounded model on the calibration part, which it did not
- * learn from. The gateway then keeps tracking; these are only its first values. A channel without one reading there
+ * learn from, excluded time left out. The gateway then keeps tracking; these are only its first values. A channel without one reading there
  * starts from the spread of the learning part, one standard deviation, which is all that is known of it.
  */
 import { type Model, normalQuantile } from '@stillwell/runtime/filter';
@@ -40,6 +40,7 @@ export function calibrate(model: Model, series: Series, span: TickSpan, coverage
     return (clipped - median[i * H + Math.min(h, H) - 1]) / model.scale[i];
   };
   replayPaths(model, series, { fromTick: span.fromTick - 1, toTick: span.toTick - 1 }, ({ at, state, median }) => {
+    if (series.excluded?.isExcluded[at] === 1) return;
     for (let c = ny; c < nc; c++)
       first[c].push(Math.abs(series.values[c][at + 1] / model.scale[c] - zOf(model, c, state.value[c])));
     for (let i = 0; i < ny; i++) {

@@ -1,9 +1,12 @@
 /**
  * Forecasts replayed over held-out history and scored beside the rivals: one origin a tick, every step of every signal,
  * only pairs whose reading is there. Readings are scored as the filter takes them, clipped to the bundle's widest values,
- * so that one impossible spike does not decide the table; the rivals are scored on the same.
+ * so that one impossible spike does not decide the table; the rivals are scored on the same. In time that the site file
+ * excludes, the filter and the rivals see the readings, as the gateway would, but no pair counts whose origin or target
+ * lies in it.
  */
 import type { Model } from '@stillwell/runtime/filter';
+import { withoutExcluded } from '../exclusions.ts';
 import type { Series } from '../history/series.ts';
 import type { TickSpan } from '../span.ts';
 import { Coverage } from './coverage.ts';
@@ -20,7 +23,7 @@ export interface Hindcast {
   readonly units: readonly string[];
   readonly horizon: number;
   readonly tickMs: number;
-  /** Origins scored: the first is the tick before the held-out part, the last still has the whole horizon inside it. */
+  /** Origins scored, none in excluded time: from the tick before the held-out part to the last with a whole horizon in it. */
   readonly origins: number;
   readonly fromMs: number;
   readonly toMs: number;
@@ -83,9 +86,12 @@ export function hindcast(model: Model, series: Series, span: HindcastSpan, units
     throw new RangeError(`Span ${from}..${to} with horizon ${H} leaves the ${series.ticks} ticks of the series.`);
   }
   const { clipLow, clipHigh } = span.clipAs ?? model;
-  const readings = series.values.slice(0, ny).map((y, i) => clipped(y, clipLow[i], clipHigh[i]));
+  const seen = series.values.slice(0, ny).map((y, i) => clipped(y, clipLow[i], clipHigh[i]));
+  const readings = withoutExcluded({ ...series, values: seen }).values;
+  const carry = (y: Float64Array, i: number): Float64Array => carryForward(y, model.mean[i]);
   const rivals = makeRivals({
-    carried: readings.map((y, i) => carryForward(y, model.mean[i])),
+    carried: seen.map(carry),
+    taught: readings.map(carry),
     horizon: H,
     periodTicks: model.seasonalPeriod,
     learn: within(span.learn, series),
@@ -118,6 +124,7 @@ class Tally {
   readonly #path: Float64Array;
   readonly #every: number;
   readonly #paths: HindcastPath[] = [];
+  #origins = 0;
 
   constructor(
     ny: number,
@@ -148,7 +155,8 @@ class Tally {
       if (at >= this.#from) this.#residuals[i][at - this.#from] = this.#readings[i][at] - this.#next[i];
       this.#next[i] = median[i * this.#horizon];
     }
-    if (at + this.#horizon >= this.#to) return;
+    if (at + this.#horizon >= this.#to || series.excluded?.isExcluded[at] === 1) return;
+    this.#origins++;
     for (let i = 0; i < this.#ny; i++) this.#score(i, moment);
     if ((at - this.#from + 1) % this.#every === 0) {
       this.#paths.push({
@@ -189,7 +197,7 @@ class Tally {
       units: units.slice(0, this.#ny),
       horizon: H,
       tickMs: series.tickMs,
-      origins: this.#to - this.#from - H + 1,
+      origins: this.#origins,
       fromMs: (series.firstTick + this.#from) * series.tickMs,
       toMs: (series.firstTick + this.#to) * series.tickMs,
       rivals: this.#rivals.map((rival) => rival.name),

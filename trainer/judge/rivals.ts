@@ -16,6 +16,8 @@ export interface Rival {
 export interface RivalInput {
   /** (ny) of (ticks), complete: the last reading carried forward. */
   readonly carried: readonly Float64Array[];
+  /** The same without excluded time: what rivals learn from. */
+  readonly taught: readonly Float64Array[];
   readonly horizon: number;
   /** Ticks in the period; 0: none. */
   readonly periodTicks: number;
@@ -74,8 +76,8 @@ function seasonal({ carried, periodTicks }: RivalInput): Rival {
   };
 }
 
-function drift({ carried }: RivalInput, learn: TickSpan): Rival {
-  const slopes = carried.map((y) => {
+function drift({ carried, taught }: RivalInput, learn: TickSpan): Rival {
+  const slopes = taught.map((y) => {
     const ticks = learn.toTick - learn.fromTick;
     return ticks > 1 ? (y[learn.toTick - 1] - y[learn.fromTick]) / (ticks - 1) : 0;
   });
@@ -88,8 +90,8 @@ function drift({ carried }: RivalInput, learn: TickSpan): Rival {
 }
 
 function windowRidge(input: RivalInput, learn: TickSpan): Rival | null {
-  const { carried, horizon, periodTicks } = input;
-  const maps = carried.map((y) => fitWindowRidge(y.subarray(learn.fromTick, learn.toTick), horizon, periodTicks));
+  const { carried, taught, horizon, periodTicks } = input;
+  const maps = taught.map((y) => fitWindowRidge(y.subarray(learn.fromTick, learn.toTick), horizon, periodTicks));
   if (maps.some((map) => map === null)) return null;
   return {
     name: 'window ridge',

@@ -5,6 +5,7 @@
 import type { Signal, Site } from '@stillwell/protocol';
 import type { Archive } from '../desk/archive.ts';
 import { TrainError } from '../errors.ts';
+import { believe } from '../exclusions.ts';
 import { channelsOf } from '../history/channels.ts';
 import type { ChannelReadings, FileRead, History } from '../history/history.ts';
 import { findLattices, type Lattice } from '../history/resolution.ts';
@@ -36,12 +37,12 @@ export function absorb(archive: Archive, files: History | null, site: Site): Abs
   checkFit(archive, channels, site);
   const ofArchive = asHistory(archive, channels, site);
   const lattices = channels.map(({ name }) => archive.channels.find((one) => one.name === name)!.lattice);
-  const before = files === null ? null : layOnTicks(files, site, lattices);
+  const before = files === null ? null : layOnTicks(believe(files, site).seen, site, lattices);
   const series = overlay(archive, before, channels, site);
   const history = files === null ? ofArchive : joined(files, ofArchive);
   const found = findLattices(history, site).map((one, c) => ({ ...one, ...lattices[c]! }));
   return {
-    series,
+    series: believe(history, site).mark(series),
     survey: surveyHistory(history, series, site, found),
     lattices,
     newFromTick: before === null ? series.firstTick : before.firstTick + before.ticks,

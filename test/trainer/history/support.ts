@@ -32,6 +32,7 @@ export function site(signals: readonly (string | Signal)[], more: Partial<Site> 
     signals: signals.map((one) => (typeof one === 'string' ? signal(one) : one)),
     inputs: [] as Input[],
     calendar: { timeOfDay: true, dayOfWeek: true, holidays: [] },
+    exclude: [],
     ...more,
   };
 }

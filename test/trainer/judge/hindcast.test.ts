@@ -158,8 +158,10 @@ describe('what is judged', () => {
 
   it('is seen by no rival before its time', () => {
     const learn = { fromTick: 0, toTick: result.learn.toTick - series.firstTick };
-    const rivalsOf = (of: readonly Float64Array[]) =>
-      makeRivals({ carried: of.map((y) => carryForward(y, 20)), horizon: H, periodTicks: 24, learn });
+    const rivalsOf = (of: readonly Float64Array[]) => {
+      const carried = of.map((y) => carryForward(y, 20));
+      return makeRivals({ carried, taught: carried, horizon: H, periodTicks: 24, learn });
+    };
     const origin = result.judged.fromTick - series.firstTick - 1;
     const paths = (of: readonly Float64Array[]): number[][] =>
       rivalsOf(of).map((rival) => {
