@@ -121,6 +121,10 @@ const checkJudge = (bundle: Bundle, signals: number): void => {
 export const checkBundle = (bundle: Bundle): void => {
   const signals = checkChannels(bundle.channels);
   const expected = toHex(bundleSchemaHash(bundle));
+  const { crossing = [] } = bundle.bounds;
+  const falls = crossing.findIndex((share, k) => share < (crossing[k - 1] ?? 0));
+  if (falls >= 0)
+    refuse('bounds.crossing', `element ${falls}: expected no less than the one before, got ${crossing[falls]}`);
   const got = toHex(bundle.schema);
   if (expected !== got) refuse('schema', `expected ${expected} for these channels and this tick, got ${got}`);
   checkSections(bundle);

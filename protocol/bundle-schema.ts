@@ -3,7 +3,7 @@
  */
 import { z } from 'zod';
 import { binary } from './binary.ts';
-import { BUNDLE_KINDS, type Bundle } from './bundle.ts';
+import { BUNDLE_KINDS, type Bundle, CROSSING_KNOTS } from './bundle.ts';
 import { type ChannelColumns, channelColumnsSchema } from './channel-columns.ts';
 import { MAX_HORIZON, MAX_LAG_TICKS, MAX_TICK_MS, MIN_TICK_MS } from './limits.ts';
 import { isName, NAME_RULE } from './name.ts';
@@ -46,7 +46,13 @@ export const linearSchema = z.strictObject({
 export const seasonalSchema = z.strictObject({ periodTicks: count, table: tensorSchema });
 
 /** Half-widths of the bounds. */
-export const boundsSchema = z.strictObject({ coverage: share, radius: tensorSchema, rate: share });
+export const boundsSchema = z.strictObject({
+  coverage: share,
+  radius: tensorSchema,
+  rate: share,
+  longRate: z.number().positive().max(100).optional(),
+  crossing: z.array(z.number().min(0).max(1)).length(CROSSING_KNOTS.length).optional(),
+});
 
 /** When a reading is passed over. */
 export const guardSchema = z.strictObject({ rejectSd: positive, maxTicks: count });

@@ -102,6 +102,8 @@ function bundleWithoutProbe(parts: Composition): Bundle {
       coverage: around.coverage,
       radius: quantiseTensor(calibration.radius, signalCount, horizon, 'i16'),
       rate: around.boundsRate,
+      ...(calibration.boundsLongRate === undefined ? {} : { longRate: calibration.boundsLongRate }),
+      ...(calibration.crossingMap === undefined ? {} : { crossing: Array.from(calibration.crossingMap) }),
     },
     guard: { rejectSd: calibration.rejectSd, maxTicks: calibration.rejectMaxTicks },
     warmupTicks: around.warmupTicks,

@@ -2,6 +2,7 @@
  * What a model must be before anything is computed with it: shapes that agree, finite numbers, a memory that forgets.
  * Checked once, at the door, so that the kernels need no checks. What a kind adds, its kernel checks.
  */
+import { CROSSING_KNOTS } from '@stillwell/protocol';
 import { kernelOf } from './kernels.ts';
 import type { CommonModel, Model } from './model.ts';
 import { requireEach, requireField, requireLength, requireWeights, requireWhole, WEIGHT_LIMIT } from './requirement.ts';
@@ -26,6 +27,9 @@ export function checkModel(model: Model): void {
   requireField(model.boundsRate >= 0 && model.boundsRate <= 0.5, 'boundsRate', '0 to 0.5', model.boundsRate);
   requireField(
     model.rejectSd > 0 && model.rejectSd <= WEIGHT_LIMIT,
+  const { boundsLongRate: longRate = 0 } = model;
+  requireField(longRate >= 0 && longRate <= 100, 'boundsLongRate', '0 to 100', longRate);
+  checkCrossingMap(model.crossingMap);
     'rejectSd',
     'a finite number above 0',
     model.rejectSd,
@@ -34,6 +38,13 @@ export function checkModel(model: Model): void {
 
 function checkCounts(model: CommonModel): void {
   const whole = (name: keyof CommonModel, low: number, high: number): void =>
+function checkCrossingMap(map: Float64Array | undefined): void {
+  if (map === undefined) return;
+  requireLength(map, 'crossingMap', CROSSING_KNOTS.length);
+  const isRising = (value: number, k: number): boolean => value >= (k > 0 ? map[k - 1] : 0) && value <= 1;
+  requireField(map.every(isRising), 'crossingMap', 'rising from 0 to 1', Array.from(map).join(' '));
+}
+
     requireWhole(model[name] as number, name, low, high);
   whole('signalCount', 1, 4096);
   whole('channelCount', model.signalCount, 4096);

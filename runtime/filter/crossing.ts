@@ -8,7 +8,11 @@
  * is put back to a normal one by its mean and variance (moments of the truncated normal distribution). Simulation of
  * such chains over 60 steps differs by at most 0.06 (tested); the largest chance of any single step, which is the naive
  * answer, is short by a factor of two and more.
+ *
+ * Real errors are no such chain. Where the bundle says how often limits were crossed when this or that probability was said,
+ * on history the model did not learn from, what is said is put right by it (`crossingMap`).
  */
+import { CROSSING_KNOTS } from '@stillwell/protocol';
 import { type Bounds, radiiOf } from './interval.ts';
 import type { CommonModel } from './model.ts';
 import { normalCdf, normalDensity } from './normal-table.ts';
@@ -71,7 +75,18 @@ export function crossing(
     stayed *= chance;
     largest = Math.max(largest, 1 - normalCdf(room / sd));
     before = sd;
-    if (step === null && Math.max(1 - stayed, largest) > 0.5) step = h;
+    if (step === null && observedShare(model, Math.max(1 - stayed, largest)) > 0.5) step = h;
   }
-  return { probability: Math.min(1, Math.max(0, 1 - stayed, largest)), step };
+  return { probability: observedShare(model, Math.max(1 - stayed, largest)), step };
+}
+
+/** What a said probability has come to; straight lines between the knots. */
+function observedShare(model: CommonModel, said: number): number {
+  const p = Math.min(1, Math.max(0, said));
+  const map = model.crossingMap;
+  if (map === undefined) return p;
+  let k = 1;
+  while (p > CROSSING_KNOTS[k]) k++;
+  const share = (p - CROSSING_KNOTS[k - 1]) / (CROSSING_KNOTS[k] - CROSSING_KNOTS[k - 1]);
+  return map[k - 1] + share * (map[k] - map[k - 1]);
 }

@@ -49,6 +49,8 @@ function commonOf(bundle: Bundle): Omit<CommonModel, 'order'> {
     coverage: bundle.bounds.coverage,
     boundsRate: bundle.bounds.rate,
     radius: dequantise(bundle.bounds.radius),
+    ...(bundle.bounds.longRate === undefined ? {} : { boundsLongRate: bundle.bounds.longRate }),
+    ...(bundle.bounds.crossing === undefined ? {} : { crossingMap: Float64Array.from(bundle.bounds.crossing) }),
     rejectSd: bundle.guard.rejectSd,
     rejectMaxTicks: bundle.guard.maxTicks,
     warmupTicks: bundle.warmupTicks,

@@ -1,22 +1,17 @@
 /**
- * Bounds around the forecast path that keep adapting: one half-width ("radius") per signal and step, moved by a quantile
- * tracker. A reading outside widens the radius of the step it was forecast at, one inside narrows it a little, so that in
- * the long run the stated share lies inside, whatever the distribution, without a buffer of residuals.
+ * Bounds around the forecast path that keep adapting: one half-width ("radius") per signal and step, moved by what tracking.ts
+ * makes of the forecasts that have come true, so that in the long run the stated share of readings lies inside, whatever
+ * the distribution, without a record of residuals.
  *
- *   q ← q + rate · min(q, q0) · ((1 − α) if outside, −α if inside),   α = 1 − coverage, q0 the radius from calibration
- *
- * min(q, q0): steps shrink with q below its calibrated size, so that q stays positive, and stay level above it, so that a
- * run of misses at a long step, which all tell of one event, does not multiply. Each radius is kept between half a step
- * of the sensor's lattice (at least a 64th of q0) and the width of the clip range.
- * Only forecasts issued from a fresh reading are scored, and none of the warm-up. During a gap the bounds widen with the age of
- * the last reading: step h has the largest radius up to step age + h, and beyond the horizon H goes linearly, over
- * another H, to the signal's seasonal spread (one standard deviation, times the normal quantile of the coverage).
+ * Each radius is kept between half a step of the sensor's lattice (at least a 64th of the calibrated one) and the width of
+ * the clip range. During a gap the bounds widen with the age of the last reading: step h has the largest radius up to step
+ * age + h, and beyond the horizon H goes linearly, over another H, to the signal's seasonal spread (one standard deviation,
+ * times the normal quantile of the coverage); all of it times a tracked factor, its `stretch`.
  * Not a guarantee for any single step: coverage holds over time.
  */
-import { FilterError } from './errors.ts';
 import type { CommonModel } from './model.ts';
 import { normalQuantile } from './normal-table.ts';
-import { type FilterState, MISSING } from './state.ts';
+import type { FilterState } from './state.ts';
 
 /**
  * The tracker's buffers, apart from the filter's state since they move no prediction.
@@ -38,9 +33,18 @@ export interface Bounds {
   readonly ceiling: Float64Array;
   /** (ny) half-width when nothing but the season is known. */
   readonly spread: Float64Array;
+  /** (ny × H) what half-widths are multiplied by while readings are missing; 1 until a gap has shown otherwise. */
+  readonly stretch: Float64Array;
+  /** Ascending steps whose forecasts are scored, 1 and H among them; radii of the steps between follow their neighbours. */
+  readonly steps: Int32Array;
+  /** Largest move of the radius of each scored step, as a share of the calibrated one. */
+  readonly rates: Float64Array;
+  /** Numbers of a forecast under way: its median; from the second tracker on its half-width too, negative if made in a gap. */
+  readonly issuedWidth: 1 | 2;
   /**
-   * Forecasts still to be scored, float32, NaN where none. Step h has a ring of its own of h slots of ny values, from
-   * ny · h(h − 1)/2: the slot tick mod h holds the forecast issued h ticks ago, until the new one takes its place.
+   * Forecasts still to be scored, float32, NaN where none. Scored steps one after another, each with a ring of its own of h
+   * slots of ny · issuedWidth numbers: the slot tick mod h holds the forecast issued h ticks ago, until the new one takes
+   * its place.
    */
   readonly issued: Float32Array;
   /** Normal quantile of the coverage: a half-width is that many standard deviations of a normal error. */
@@ -49,10 +53,16 @@ export interface Bounds {
   readonly scratch: Float64Array;
 }
 
+/** Steps scored one by one up to here; from there to twice as far every second, then every fourth, and so on. */
+const DENSE_STEPS = 16;
+/** The tracker's step at h is at most longRate / (h + this). */
+const RATE_AHEAD = 5;
+
 /**
  * Bounds as calibrated, nothing tracked yet.
  *
- * shapes  issued takes ny · H(H + 1)/2 float32 numbers: 59 KB at 8 signals and 60 steps, 149 KB at 96
+ * shapes  issued takes 8 ny bytes times the sum of the scored steps: 43 KB at 8 signals and 60 steps, 69 KB at 96, 219 KB at
+ *         288; for bundles without a long rate 2 ny H(H + 1) bytes
  */
 export function createBounds(model: CommonModel): Bounds {
   const { signalCount: ny, horizon: H } = model;
@@ -68,6 +78,10 @@ export function createBounds(model: CommonModel): Bounds {
     }
   }
   const quantile = normalQuantile(0.5 + model.coverage / 2);
+  const { boundsRate, boundsLongRate } = model;
+  const isFirst = boundsLongRate === undefined;
+  const steps = Int32Array.from(isFirst ? Array.from({ length: H }, (_, k) => k + 1) : scoredSteps(H));
+  const issuedWidth = isFirst ? 1 : 2;
   return {
     tick: -1,
     warmed: 0,
@@ -76,60 +90,27 @@ export function createBounds(model: CommonModel): Bounds {
     floor,
     ceiling,
     spread: new Float64Array(ny).fill(quantile),
-    issued: new Float32Array((ny * H * (H + 1)) / 2).fill(Number.NaN),
+    stretch: new Float64Array(ny * H).fill(1),
+    steps,
+    rates: Float64Array.from(steps, (h) =>
+      isFirst ? boundsRate : Math.min(boundsRate, boundsLongRate / (h + RATE_AHEAD)),
+    ),
+    issuedWidth,
+    issued: new Float32Array(ny * issuedWidth * steps.reduce((sum, h) => sum + h, 0)).fill(Number.NaN),
     quantile,
     scratch: new Float64Array(H),
   };
 }
 
-/**
- * Scores the forecasts of this tick that were issued earlier, moves the radii, and takes the new path in. Once a tick,
- * after `update`; after a tick left out the forecasts under way are dropped, since they no longer line up.
- *
- * shapes  medianPath (ny × H), as forecastPath wrote it
- * units   medianPath in units of the signals
- * throws  FilterError 'tick' when called twice for a tick or before the first
- * cost    O(ny · H); allocates nothing
- */
-export function trackBounds(model: CommonModel, bounds: Bounds, state: FilterState, medianPath: Float64Array): void {
-  const tick = state.tick;
-  if (tick < 0 || tick === bounds.tick) {
-    throw new FilterError('tick', `bounds: expected a tick after ${bounds.tick}, got ${tick}`, {
-      details: { last: bounds.tick, got: tick },
-    });
+/** 1 … 16, then 18 … 32, 36 … 64, 72 … 128 and so on, and H: errors of neighbouring steps are alike. */
+function scoredSteps(horizon: number): number[] {
+  const steps: number[] = [];
+  let gap = 1;
+  for (let h = 1; h < horizon; h += gap) {
+    steps.push(h);
+    if (h === DENSE_STEPS * gap) gap *= 2;
   }
-  if (tick !== bounds.tick + 1) bounds.issued.fill(Number.NaN);
-  bounds.tick = tick;
-  const isWarm = bounds.warmed >= model.warmupTicks;
-  if (!isWarm) bounds.warmed++;
-  const { signalCount: ny, horizon: H } = model;
-  const { issued } = bounds;
-  for (let h = 1; h <= H; h++) {
-    let slot = ((h * (h - 1)) / 2 + (tick % h)) * ny;
-    for (let i = 0; i < ny; i++, slot++) {
-      if (state.observed[i] !== MISSING) score(model, bounds, state, i, h, slot);
-      const isScored = isWarm && state.age[i] === 0;
-      issued[slot] = isScored ? (medianPath[i * H + h - 1] - model.mean[i]) / model.scale[i] : Number.NaN;
-    }
-  }
-}
-
-/** Moves one radius by the error of the forecast that stands in `slot`, if one does. */
-function score(
-  model: CommonModel,
-  bounds: Bounds,
-  state: FilterState,
-  signal: number,
-  step: number,
-  slot: number,
-): void {
-  const error = state.reading[signal] - bounds.issued[slot];
-  if (error - error !== 0) return;
-  const cell = signal * model.horizon + step - 1;
-  const q = bounds.radius[cell];
-  const stride = model.boundsRate * Math.min(q, bounds.calibrated[cell]);
-  const moved = q + stride * (Math.abs(error) > q ? model.coverage : model.coverage - 1);
-  bounds.radius[cell] = Math.min(bounds.ceiling[signal], Math.max(bounds.floor[cell], moved));
+  return [...steps, horizon];
 }
 
 /**
@@ -161,7 +142,8 @@ export function radiiOf(
     const reach = age + h;
     if (reach <= H) widest = Math.max(widest, radius[row + reach - 1]);
     const beyond = Math.min(1, Math.max(0, (reach - H) / H));
-    out[at + h - 1] = widest + beyond * (Math.max(widest, bounds.spread[signal]) - widest);
+    const width = widest + beyond * (Math.max(widest, bounds.spread[signal]) - widest);
+    out[at + h - 1] = Math.min(bounds.ceiling[signal], width * bounds.stretch[row + h - 1]);
   }
 }
 

@@ -14,9 +14,10 @@
  * on); at every eighth tick (n mod 8 = 7) and the last the median path, lower and upper bounds (ny × H each).
  */
 import { forecastPath, predictNext } from './forecast.ts';
-import { createBounds, intervalOf, trackBounds } from './interval.ts';
+import { createBounds, intervalOf } from './interval.ts';
 import type { Model } from './model.ts';
 import { createState } from './state.ts';
+import { trackBounds } from './tracking.ts';
 import { update } from './update.ts';
 
 /** What a probe gives: its outputs as bytes, and the last median path of signal 0 in its unit. */

@@ -11,7 +11,8 @@
  * | 12 | 8 | tick, float64 |
  * | 20 | … | state: per channel started u8, passed u16, age u32, then float64 value and what the kind keeps of the channel |
  * |    |   | (linear: memories, ring oldest first), and after the channels what it keeps of no channel alone |
- * |    |   | bounds: warmed u32, radius float64 (ny × H), forecasts under way float32 (ny · H(H + 1)/2) |
+ * |    |   | bounds: warmed u32, radius and, unless tracked as in the first bundles, stretch float64 (ny × scored steps each), |
+ * |    |   | forecasts under way float32 as `Bounds.issued` |
  * | end − 4 | 4 | CRC-32 of all before |
  */
 import { ARITHMETIC } from '@stillwell/protocol';
@@ -21,6 +22,7 @@ import { type Bounds, createBounds } from './interval.ts';
 import { kernelOf } from './kernels.ts';
 import type { Model } from './model.ts';
 import { createState, type FilterState, fadeTicks } from './state.ts';
+import { LEAST_STRETCH, MOST_STRETCH, spreadRadii } from './tracking.ts';
 
 const VERSION = 1;
 const HEAD = 20;
@@ -98,13 +100,16 @@ export function restoreState(model: Model, bytes: Uint8Array): FilterState {
 /**
  * The bounds' snapshot; larger than the state's, since it holds the forecasts still to be scored.
  *
- * shapes  28 + 8 · ny · H + 2 · ny · H(H + 1) bytes
+ * shapes  28 + 16 · ny · scored steps + 4 · issued bytes; 28 + 8 · ny · H + 2 · ny · H(H + 1) for bundles without a long rate
  */
 export function saveBounds(model: Model, bounds: Bounds): Uint8Array {
   const bytes = new Uint8Array(boundsSize(bounds));
   const view = writeHead(bytes, BOUNDS_MAGIC, model, bounds.tick);
   view.setUint32(HEAD, bounds.warmed, true);
-  let at = putFloats(view, HEAD + 4, bounds.radius, 0, bounds.radius.length);
+  let at = HEAD + 4;
+  for (const values of trackedParts(bounds)) {
+    for (const cell of scoredCells(model, bounds)) at = putFloats(view, at, values, cell, cell + 1);
+  }
   for (let k = 0; k < bounds.issued.length; k++, at += 4) view.setFloat32(at, bounds.issued[k], true);
   view.setUint32(at, crc32(bytes, 0, at), true);
   return bytes;
@@ -120,18 +125,35 @@ export function restoreBounds(model: Model, bytes: Uint8Array): Bounds {
   const view = readHead(bytes, BOUNDS_MAGIC, model, boundsSize(bounds), 'bounds');
   bounds.tick = view.getFloat64(12, true);
   bounds.warmed = view.getUint32(HEAD, true);
-  let at = getFloats(view, HEAD + 4, bounds.radius, 0, bounds.radius.length);
-  for (let k = 0; k < bounds.issued.length; k++, at += 4) bounds.issued[k] = view.getFloat32(at, true);
-  for (let k = 0; k < bounds.radius.length; k++) {
-    const ceiling = bounds.ceiling[Math.floor(k / model.horizon)];
-    if (bounds.radius[k] >= bounds.floor[k] && bounds.radius[k] <= ceiling) continue;
-    throw refusal('bounds', `radius ${k}`, `${bounds.floor[k]} to ${ceiling}`, bounds.radius[k]);
+  let at = HEAD + 4;
+  for (const values of trackedParts(bounds)) {
+    for (const cell of scoredCells(model, bounds)) at = getFloats(view, at, values, cell, cell + 1);
   }
+  for (let k = 0; k < bounds.issued.length; k++, at += 4) bounds.issued[k] = view.getFloat32(at, true);
+  for (const k of scoredCells(model, bounds)) {
+    const ceiling = bounds.ceiling[Math.floor(k / model.horizon)];
+    if (!(bounds.radius[k] >= bounds.floor[k] && bounds.radius[k] <= ceiling)) {
+      throw refusal('bounds', `radius ${k}`, `${bounds.floor[k]} to ${ceiling}`, bounds.radius[k]);
+    }
+    if (bounds.stretch[k] >= LEAST_STRETCH && bounds.stretch[k] <= MOST_STRETCH) continue;
+    throw refusal('bounds', `stretch ${k}`, `${LEAST_STRETCH} to ${MOST_STRETCH}`, bounds.stretch[k]);
+  }
+  for (let i = 0; i < model.signalCount; i++) spreadRadii(model, bounds, i);
   return bounds;
 }
 
 function boundsSize(bounds: Bounds): number {
-  return HEAD + 4 + 8 * bounds.radius.length + 4 * bounds.issued.length + 4;
+  const signals = bounds.ceiling.length;
+  return HEAD + 4 + 8 * signals * bounds.steps.length * trackedParts(bounds).length + 4 * bounds.issued.length + 4;
+}
+
+/** What tracking has moved, by signal and scored step; the rest follows from it. */
+function trackedParts(bounds: Bounds): readonly Float64Array[] {
+  return bounds.issuedWidth === 1 ? [bounds.radius] : [bounds.radius, bounds.stretch];
+}
+
+function scoredCells(model: Model, bounds: Bounds): readonly number[] {
+  return Array.from(bounds.ceiling).flatMap((_, i) => Array.from(bounds.steps, (h) => i * model.horizon + h - 1));
 }
 
 function writeHead(bytes: Uint8Array, magic: number, model: Model, tick: number): DataView {
