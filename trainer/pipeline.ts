@@ -13,6 +13,7 @@ import { type Taught, teach } from './identify/teach.ts';
 import { calibrate } from './judge/calibrate.ts';
 import { judge, type Verdicts, verdictSteps } from './judge/gate.ts';
 import { type Hindcast, hindcast } from './judge/hindcast.ts';
+import { type Reliance, reliance } from './judge/reliance.ts';
 import { meanOf } from './judge/scores.ts';
 import { type KindSections, withCalibration } from './kinds/candidate.ts';
 import { chooseKind, type KindChoice, type Tried } from './kinds/choose-kind.ts';
@@ -58,6 +59,8 @@ export interface FitResult {
   readonly audit: Audit;
   readonly verdicts: Verdicts;
   readonly chosen: Chosen;
+  /** What losing each channel costs; null where there is too little judged time, or too many channels. */
+  readonly reliance: Reliance | null;
   readonly warnings: readonly string[];
   /** Wall time of the steps in ms, for the terminal; not in the document. */
   readonly timings: Readonly<Record<string, number>>;
@@ -92,6 +95,8 @@ export async function fit(input: FitInput, options: FitOptions): Promise<FitResu
   const cast = hindcast(modelFromBundle(small.bundle), input.series, { ...split.judged, learn: split.learn }, units);
   const verdicts = judge(cast);
   const audit = auditRounding(small, cast, input.series, split);
+  clock.lap('finding what the forecasts rest on');
+  const rest = reliance(modelFromBundle(small.bundle), input.series, indices(split.judged, input.series));
   clock.lap('writing the candidate');
   const parts = options.useAll ? learnFromAll(input.series, small) : small.parts;
   const document = encodeBundle(composeBundle({ ...parts, judge: judgeTable(cast, verdicts, options.override) }));
@@ -105,6 +110,7 @@ export async function fit(input: FitInput, options: FitOptions): Promise<FitResu
     audit,
     verdicts,
     chosen: chosenOf(small.choice, prepared, taught),
+    reliance: rest,
     warnings: [...prepared.warnings, ...taught.warnings],
     timings: clock.laps(),
   });

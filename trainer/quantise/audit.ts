@@ -28,28 +28,28 @@ export interface Audit {
  * cost    one replay
  */
 export function replayError(model: Model, series: Series, span: TickSpan): number {
-  return meanOf(replayScores(model, series, span).mse());
+  return meanOf(replayScores(model, series, span, series).mse());
 }
 
 /**
- * The same by signal.
+ * The same by signal; `seen` is what the filter sees where that is not the series it is scored against.
  *
- * shapes  span of indices into the series; result (ny), NaN where nothing was read
+ * shapes  span of indices into the series; seen like the series; result (ny), NaN where nothing was read
  * units   standardised²
  * throws  FilterError if the model does not fit the series
  * source  none
  * cost    one replay
  */
-export function signalErrors(model: Model, series: Series, span: TickSpan): Float64Array {
+export function signalErrors(model: Model, series: Series, span: TickSpan, seen: Series = series): Float64Array {
   const { signalCount: ny, horizon: H } = model;
-  const mse = replayScores(model, series, span).mse();
+  const mse = replayScores(model, series, span, seen).mse();
   return Float64Array.from({ length: ny }, (_, i) => meanOf(mse, i * H, (i + 1) * H));
 }
 
-function replayScores(model: Model, series: Series, span: TickSpan): Scores {
+function replayScores(model: Model, series: Series, span: TickSpan, seen: Series): Scores {
   const { signalCount: ny, horizon: H } = model;
   const scores = new Scores(ny * H);
-  replayPaths(model, series, { fromTick: span.fromTick - 1, toTick: span.toTick - H }, ({ at, median }) => {
+  replayPaths(model, seen, { fromTick: span.fromTick - 1, toTick: span.toTick - H }, ({ at, median }) => {
     if (series.excluded?.isExcluded[at] === 1) return;
     for (let i = 0; i < ny; i++) {
       for (let h = 1; h <= H; h++) {

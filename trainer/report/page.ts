@@ -9,7 +9,9 @@ import type { FitResult } from '../pipeline.ts';
 import { spanText } from '../text-table.ts';
 import { palette } from './chart.ts';
 import { forecastChart } from './forecast-chart.ts';
+import { glance } from './glance.ts';
 import { escapeHtml, moment, percent, plainNumber, table, unitText } from './markup.ts';
+import { relianceTable } from './reliance-table.ts';
 import { autocorrelationChart, histogramChart } from './residual-chart.ts';
 import { coverageChart, errorChart } from './skill-chart.ts';
 import { skillTable } from './skill-table.ts';
@@ -39,12 +41,17 @@ export function fitReport({ site, survey, result }: ReportInput): string {
 <h1>${escapeHtml(title)}</h1>
 ${summary(site, result)}
 <p class="caution"><strong>${escapeHtml(ADVISORY)}</strong> Local codes and licensed practice decide.</p>
+<h2>At a glance</h2>
+${glance(result)}
+<h2>What was found wrong in the history</h2>
+${findings(survey, result)}
 <h2>How far ahead it can be trusted</h2>
 <p>How much smaller the squared error is than that of the strongest rival (named in the cell) at that distance,
 on held-out time that the model never saw: 0 % is no better, 100 % would be perfect, below 0 % the rival is better.</p>
 ${skillTable(result.hindcast)}
 ${isLearnedAgain(result) ? '<p>After that it learned once more from the whole history, which is the model in the bundle.</p>' : ''}
 ${verdictTable(result)}
+${resting(result)}
 <h2>Forecasts over held-out days</h2>
 <p>${key(palette.reading)}reading that came ${key(palette.ours)}forecast, issued at the left end of each piece
 ${key(palette.band)}bounds meant to hold ${percent(result.hindcast.nominalCoverage)} of the readings</p>
@@ -56,12 +63,18 @@ ${perSignal(result.hindcast, (signal) => pair(errorChart(result.hindcast, signal
 <p>Left: size of the misses beside the normal curve of the same spread (dashed). Right: bars outside the dashed band say
 that a miss still tells something about later ones, so there is more to learn.</p>
 ${perSignal(result.hindcast, (signal) => pair(histogramChart(result.hindcast, signal), autocorrelationChart(result.hindcast, signal)))}
-<h2>What was found in the history</h2>
-${findings(survey, result)}
 <h2>The record</h2>
 ${record(result)}
 </body></html>
 `;
+}
+
+function resting({ reliance, hindcast }: FitResult): string {
+  if (reliance === null) return '';
+  return `<h2>Which readings the forecasts rest on</h2>
+<p>How much the squared error rises when a reading stays away, as when its sensor fails: the dearest sensor is the one to
+look after first. Measured on ${reliance.origins} forecasts of held-out time.</p>
+${relianceTable(reliance, hindcast.signals)}`;
 }
 
 function summary(site: Site, { hindcast, verdicts, document }: FitResult): string {
