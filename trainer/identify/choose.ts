@@ -9,6 +9,7 @@ import { aboutMeans, addMoments, pickMoments } from './moment-sets.ts';
 import type { Moments } from './moments.ts';
 import { crossSystem, type Layout, mapError, ownFeatures, ownMap, ridgeOwn } from './ridge.ts';
 import { type BankSize, bankSizes, subBank } from './sub-banks.ts';
+import { gainsSurely, geometricMean } from './sure-gain.ts';
 
 /** What was chosen, with the validation error it had. */
 export interface Choice {
@@ -42,8 +43,6 @@ const OWN_GAIN = 0.02;
 const CROSS_GAIN = 0.001;
 /** A signal leaves its last value for its own map only for this gain. */
 const STILL_GAIN = 0.002;
-/** Student's t at 90 %, one-sided, by degrees of freedom from 1 (any table); more folds than these there are never. */
-const STUDENT_90 = [3.078, 1.886, 1.638, 1.533, 1.476, 1.44, 1.415] as const;
 /** Folds learn from at least this many groups where there are enough. */
 const FIRST_FOLD = 3;
 
@@ -147,17 +146,17 @@ function chooseOwn(
     folds.map((fold) => Float64Array.from(signals, (i) => ownError(fold, layout, i, chosenOf[i], penalty)));
   const penalties: number[] = [...OWN_PENALTIES];
   const errors = penalties.map(attempt);
-  const means = errors.map((perFold) => geometric(perFold.map(total)));
+  const means = errors.map((perFold) => geometricMean(perFold.map(total)));
   while (leastIndex(means) === means.length - 1 && penalties[means.length - 1] * HALF_DECADE <= HEAVIEST_OWN * 1.01) {
     penalties.push(penalties[means.length - 1] * HALF_DECADE);
     errors.push(attempt(penalties[means.length]));
-    means.push(geometric(errors[means.length].map(total)));
+    means.push(geometricMean(errors[means.length].map(total)));
   }
   const common = means.findLastIndex((mean) => mean <= Math.min(...means) * (1 + TIE));
   const still = folds.map(({ judge }) => lastValueErrors(judge, layout));
   const picked = signals.map((i): { penalty: number | null; errors: number[] } => {
     const own = errors.map((perFold) => perFold.map((bySignal) => bySignal[i]));
-    const ownMeans = own.map(geometric);
+    const ownMeans = own.map(geometricMean);
     const least = leastIndex(ownMeans);
     const best = ownMeans[least] < ownMeans[common] * (1 - OWN_GAIN) ? least : common;
     const without = still.map((bySignal) => bySignal[i]);
@@ -165,7 +164,7 @@ function chooseOwn(
     return { penalty: null, errors: without };
   });
   const totals = folds.map((_, f) => picked.reduce((sum, signal) => sum + signal.errors[f], 0));
-  return { penalties: picked.map(({ penalty }) => penalty), error: geometric(totals) };
+  return { penalties: picked.map(({ penalty }) => penalty), error: geometricMean(totals) };
 }
 
 /** (ny) mean squared errors of the last value, over the steps. */
@@ -174,20 +173,6 @@ function lastValueErrors(judge: Moments, layout: Layout): Float64Array {
     judge.energy.map((sum) => sum / judge.origins),
     layout.steps,
   );
-}
-
-/**
- * Whether one choice's errors lie below another's: by more than a share on geometric average, and by more than folds that
- * differ by chance would show in one case of ten. A single fold has only the share to go by.
- */
-function gainsSurely(errors: readonly number[], others: readonly number[], share: number): boolean {
-  const gains = errors.map((error, f) => logOf(others[f]) - logOf(error));
-  const freedom = gains.length - 1;
-  const mean = total(Float64Array.from(gains)) / gains.length;
-  if (!(mean > -Math.log(1 - share))) return false;
-  if (freedom === 0) return true;
-  const squares = gains.reduce((sum, gain) => sum + (gain - mean) * (gain - mean), 0);
-  return mean >= STUDENT_90[freedom - 1] * Math.sqrt(squares / (freedom * gains.length));
 }
 
 /** Mean squared error of one signal's own map on the fold's judge, over the steps. */
@@ -228,7 +213,7 @@ function chooseCross(folds: readonly Fold[], layout: Layout, penalties: readonly
   });
   const attempt = (penalty: number): { penalty: number; errors: Float64Array[]; mean: number } => {
     const errors = ready.map((fold) => crossErrors(fold, layout, penalty));
-    return { penalty, errors, mean: geometric(errors.map(total)) };
+    return { penalty, errors, mean: geometricMean(errors.map(total)) };
   };
   const tried = CROSS_PENALTIES.map(attempt);
   const best = (): (typeof tried)[number] => tried[leastIndex(tried.map(({ mean }) => mean))];
@@ -243,7 +228,7 @@ function chooseCross(folds: readonly Fold[], layout: Layout, penalties: readonly
   return Array.from({ length: layout.signalCount }, (_, i) => {
     const without = alone.map((signals) => signals[i]);
     const joined = common.errors.map((signals) => signals[i]);
-    const isBetter = geometric(joined) < geometric(without) * (1 - CROSS_GAIN);
+    const isBetter = geometricMean(joined) < geometricMean(without) * (1 - CROSS_GAIN);
     const lasting = still.map((signals) => signals[i]);
     return isBetter && gainsSurely(joined, lasting, STILL_GAIN) ? common.penalty : null;
   });
@@ -267,16 +252,6 @@ function signalErrors(errors: Float64Array, steps: number): Float64Array {
 
 function total(values: Float64Array): number {
   return values.reduce((sum, value) => sum + value, 0);
-}
-
-function geometric(values: readonly number[]): number {
-  let sum = 0;
-  for (const value of values) sum += logOf(value);
-  return Math.exp(sum / values.length);
-}
-
-function logOf(value: number): number {
-  return Math.log(Math.max(value, Number.MIN_VALUE));
 }
 
 function leastIndex(values: readonly number[]): number {
