@@ -82,7 +82,8 @@ async function load(site: Site, options: FitCommandOptions): Promise<LoadedHisto
   const span = timeSpan(options, site.timeZone);
   const progress = createProgress('reading');
   try {
-    return await loadHistory(options.history, site, { zone: options.timeZone ?? null, ...span, progress });
+    const judgedShare = 1 - options.learnShare - options.calibrateShare;
+    return await loadHistory(options.history, site, { zone: options.timeZone ?? null, ...span, progress }, judgedShare);
   } finally {
     progress.end();
   }

@@ -5,6 +5,7 @@ import { Command } from 'commander';
 import { openBundleFile } from '../bundle-file.ts';
 import { TrainError } from '../errors.ts';
 import { believe, excludedNotes } from '../exclusions.ts';
+import { asTheGateway } from '../history/plausible.ts';
 import { readHistory } from '../history/read.ts';
 import type { Series } from '../history/series.ts';
 import { layOnTicks } from '../history/ticks.ts';
@@ -76,6 +77,7 @@ async function run(options: HindcastOptions): Promise<void> {
       seen,
       site,
       bundle.channels.map((channel) => channel.lattice),
+      asTheGateway(site),
     ),
   );
   const learned = learnedSpans(bundle);

@@ -44,7 +44,7 @@ export function outsideFindings(signal: Signal, channel: ChannelReadings): Findi
       count: out.count,
       sentence: isDeclared
         ? `${signal.name} lies outside its range of ${span} in ${counted(out.count, 'reading')}, worst ${figure(out.worst)}; they were left out.`
-        : `${signal.name} has ${counted(out.count, 'reading')} absurdly far from all others, worst ${figure(out.worst)}; they were left out.`,
+        : `${signal.name} has ${counted(out.count, 'reading')} absurdly far from all others, worst ${figure(out.worst)}; nothing is learned from them.`,
       advice: isDeclared
         ? 'Mend the range in the site file if these readings are real.'
         : 'Declare the range of the signal in the site file; the gateway refuses readings outside it.',

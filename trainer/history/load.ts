@@ -4,11 +4,12 @@
 import type { Site } from '@stillwell/protocol';
 import { believe } from '../exclusions.ts';
 import type { History } from './history.ts';
+import { plausibilityOf } from './plausible.ts';
 import { type ReadOptions, readHistory } from './read.ts';
 import { type FoundLattice, findLattices } from './resolution.ts';
 import type { Series } from './series.ts';
 import { type Survey, surveyHistory } from './survey.ts';
-import { layOnTicks } from './ticks.ts';
+import { layOnTicks, tickSpan } from './ticks.ts';
 
 /** A history ready to learn from. */
 export interface LoadedHistory {
@@ -19,22 +20,38 @@ export interface LoadedHistory {
 }
 
 /**
- * Lays a history on ticks, excluded time told apart, and surveys it as it came; throws TrainError 'history' as layOnTicks
- * does.
+ * Lays a history on ticks, excluded time told apart, and surveys it as it came. Lattices come from all readings, judged
+ * ones too: a sensor's step is no knowledge of the future, and every reading must be given back exactly.
+ *
+ * judgedShare  share of the ticks at the end that will judge, and so say nothing of which readings are plausible
+ * throws       TrainError 'history' as layOnTicks does
  */
-export function prepare(history: History, site: Site): LoadedHistory {
+export function prepare(history: History, site: Site, judgedShare = 0): LoadedHistory {
   const { seen, taught, mark } = believe(history, site);
   const lattices = findLattices(taught, site);
-  const laid = layOnTicks(history, site, lattices);
-  const series = mark(seen === history ? laid : layOnTicks(seen, site, lattices));
+  const plausibility = plausibilityOf(taught, site, judgedFromMs(history, site.tickMs, judgedShare));
+  const laid = layOnTicks(history, site, lattices, plausibility);
+  const series = mark(seen === history ? laid : layOnTicks(seen, site, lattices, plausibility));
   return { history, series, lattices, survey: surveyHistory(history, laid, site, lattices) };
+}
+
+function judgedFromMs(history: History, tickMs: number, share: number): number {
+  const span = share > 0 ? tickSpan(history.channels, tickMs) : null;
+  if (span === null) return Number.POSITIVE_INFINITY;
+  return (span.first + Math.round((1 - share) * (span.last - span.first + 1))) * tickMs;
 }
 
 /**
  * Reads, lays on ticks and surveys.
  *
+ * judgedShare  as `prepare`
  * throws  TrainError 'file' or 'history' as readHistory and layOnTicks do
  */
-export async function loadHistory(files: readonly string[], site: Site, options: ReadOptions): Promise<LoadedHistory> {
-  return prepare(await readHistory(files, site, options), site);
+export async function loadHistory(
+  files: readonly string[],
+  site: Site,
+  options: ReadOptions,
+  judgedShare = 0,
+): Promise<LoadedHistory> {
+  return prepare(await readHistory(files, site, options), site, judgedShare);
 }

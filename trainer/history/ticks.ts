@@ -9,7 +9,7 @@ import { TrainError } from '../errors.ts';
 import { TickValue } from './aggregate.ts';
 import { channelsOf } from './channels.ts';
 import type { ChannelReadings, History } from './history.ts';
-import { plausibleSpan } from './plausible.ts';
+import { type Plausibility, type Plausible, plausibilityOf } from './plausible.ts';
 import { findLattices, type Lattice } from './resolution.ts';
 import type { Series } from './series.ts';
 
@@ -26,8 +26,8 @@ export function timeOrder(times: Float64Array): Uint32Array | null {
   return order.sort((a, b) => (times[a] as number) - (times[b] as number) || a - b);
 }
 
-/** First and last tick with a reading; null where there is none. */
-function tickSpan(
+/** First and last tick with a reading, and how many; null where there is none. */
+export function tickSpan(
   channels: readonly ChannelReadings[],
   tickMs: number,
 ): { first: number; last: number; readings: number } | null {
@@ -69,9 +69,15 @@ function layChannel(
   lattice: Lattice,
   order: Uint32Array | null,
   span: { tickMs: number; first: number; ticks: number },
+  plausible: Plausible,
+  untilMs: number,
 ): Float64Array {
   const laid = new Float64Array(span.ticks).fill(Number.NaN);
-  const { low, high } = plausibleSpan(signal, channel.values);
+  const furthest = Number.MAX_SAFE_INTEGER * lattice.step;
+  const isTaken = (value: number, timeMs: number): boolean =>
+    timeMs < untilMs || plausible.isDeclared
+      ? value >= plausible.low && value <= plausible.high
+      : Math.abs(value) <= furthest;
   const tick = new TickValue(signal.aggregate);
   const repeats = signal.aggregate === 'sum' || signal.aggregate === 'increment' ? new RepeatFilter() : null;
   let open = -1;
@@ -83,7 +89,7 @@ function layChannel(
   for (let n = 0; n < channel.times.length; n++) {
     const i = order === null ? n : (order[n] as number);
     const value = channel.values[i] as number;
-    if (!(value >= low && value <= high)) continue;
+    if (!isTaken(value, channel.times[i] as number)) continue;
     if (repeats?.isRepeat(channel.times[i] as number, value)) continue;
     const k = Math.floor((channel.times[i] as number) / span.tickMs) - span.first;
     if (k !== open) {
@@ -107,13 +113,15 @@ export function digestOf(tickMs: number, firstTick: number, values: readonly Flo
 /**
  * Lays a history on ticks.
  *
- * lattices  by channel; found in the history when absent
- * throws    TrainError 'history' where it is shorter than two ticks, or stretched out by a stray time
+ * lattices      by channel; found in the history when absent
+ * plausibility  which readings are taken; those plausible beside the whole history when absent
+ * throws        TrainError 'history' where it is shorter than two ticks, or stretched out by a stray time
  */
 export function layOnTicks(
   history: History,
   site: Site,
   lattices: readonly Lattice[] = findLattices(history, site),
+  { spans, untilMs }: Plausibility = plausibilityOf(history, site),
 ): Series {
   const { tickMs } = site;
   const span = tickSpan(history.channels, tickMs);
@@ -133,11 +141,15 @@ export function layOnTicks(
   for (const { times } of history.channels) if (!orders.has(times)) orders.set(times, timeOrder(times));
   const channels = channelsOf(site);
   const values = history.channels.map((channel, c) =>
-    layChannel(channel, channels[c] as Signal, lattices[c] as Lattice, orders.get(channel.times) ?? null, {
-      tickMs,
-      first: span.first,
-      ticks,
-    }),
+    layChannel(
+      channel,
+      channels[c] as Signal,
+      lattices[c] as Lattice,
+      orders.get(channel.times) ?? null,
+      { tickMs, first: span.first, ticks },
+      spans[c] as Plausible,
+      untilMs,
+    ),
   );
   return Object.freeze({
     tickMs,
