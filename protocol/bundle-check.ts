@@ -94,6 +94,10 @@ const checkRadius = (bundle: Bundle, signals: number): void => {
   const values = dequantise(bundle.bounds.radius);
   const at = values.findIndex((value) => value < 0);
   if (at >= 0) refuse('bounds.radius', `element ${at}: expected a half-width >= 0, got ${values[at]}`);
+  const { crossing = [] } = bundle.bounds;
+  const falls = crossing.findIndex((share, k) => share < (crossing[k - 1] ?? 0));
+  if (falls >= 0)
+    refuse('bounds.crossing', `element ${falls}: expected no less than the one before, got ${crossing[falls]}`);
 };
 
 const checkJudge = (bundle: Bundle, signals: number): void => {
@@ -121,10 +125,6 @@ const checkJudge = (bundle: Bundle, signals: number): void => {
 export const checkBundle = (bundle: Bundle): void => {
   const signals = checkChannels(bundle.channels);
   const expected = toHex(bundleSchemaHash(bundle));
-  const { crossing = [] } = bundle.bounds;
-  const falls = crossing.findIndex((share, k) => share < (crossing[k - 1] ?? 0));
-  if (falls >= 0)
-    refuse('bounds.crossing', `element ${falls}: expected no less than the one before, got ${crossing[falls]}`);
   const got = toHex(bundle.schema);
   if (expected !== got) refuse('schema', `expected ${expected} for these channels and this tick, got ${got}`);
   checkSections(bundle);

@@ -78,6 +78,9 @@ export const BUNDLE_KINDS = ['linear'] as const;
 /** One of them. */
 export type BundleKind = (typeof BUNDLE_KINDS)[number];
 
+/** Said probabilities at which `bounds.crossing` stands; straight lines between. */
+export const CROSSING_KNOTS = [0, 0.02, 0.05, 0.1, 0.2, 0.3, 0.4, 0.5, 0.6, 0.7, 0.8, 0.9, 0.95, 0.98, 1] as const;
+
 /** A model, how far it may be trusted, and where it came from. */
 export interface Bundle {
   readonly format: number;
@@ -101,9 +104,10 @@ export interface Bundle {
     readonly radius: Tensor;
     /** Step of the quantile tracker, as a share of the half-width. */
     readonly rate: number;
-/** Said probabilities at which `bounds.crossing` stands; straight lines between. */
-export const CROSSING_KNOTS = [0, 0.02, 0.05, 0.1, 0.2, 0.3, 0.4, 0.5, 0.6, 0.7, 0.8, 0.9, 0.95, 0.98, 1] as const;
-
+    /** The step for forecasts h ticks ahead is at most this over h + 5; absent in the first bundles, whose bounds are tracked otherwise. */
+    readonly longRate?: number | undefined;
+    /** How often a limit was crossed where CROSSING_KNOTS were said, rising; said probabilities are put right by it. Absent: as said. */
+    readonly crossing?: readonly number[] | undefined;
   };
   /** Readings further than rejectSd × residualScale from their forecast are passed over, at most maxTicks in a row. */
   readonly guard: { readonly rejectSd: number; readonly maxTicks: number };
@@ -129,10 +133,6 @@ export const CROSSING_KNOTS = [0, 0.02, 0.05, 0.1, 0.2, 0.3, 0.4, 0.5, 0.6, 0.7,
    * runtime/filter/probe.ts; `digest` is SHA-256 over all outputs as float64 little-endian; `last` the last path of signal 0.
    */
   readonly probe: {
-    /** The step for forecasts h ticks ahead is at most this over h + 5; absent in the first bundles, whose bounds are tracked otherwise. */
-    readonly longRate?: number | undefined;
-    /** How often a limit was crossed where CROSSING_KNOTS were said, rising; said probabilities are put right by it. Absent: as said. */
-    readonly crossing?: readonly number[] | undefined;
     readonly seed: number;
     readonly ticks: number;
     readonly digest: Uint8Array;

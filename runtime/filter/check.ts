@@ -25,19 +25,17 @@ export function checkModel(model: Model): void {
   requireEach(model.radius, 'radius', (value) => value >= 0 && value <= WEIGHT_LIMIT, 'a finite number, zero or more');
   requireField(model.coverage > 0 && model.coverage < 1, 'coverage', 'more than 0 and less than 1', model.coverage);
   requireField(model.boundsRate >= 0 && model.boundsRate <= 0.5, 'boundsRate', '0 to 0.5', model.boundsRate);
-  requireField(
-    model.rejectSd > 0 && model.rejectSd <= WEIGHT_LIMIT,
   const { boundsLongRate: longRate = 0 } = model;
   requireField(longRate >= 0 && longRate <= 100, 'boundsLongRate', '0 to 100', longRate);
   checkCrossingMap(model.crossingMap);
+  requireField(
+    model.rejectSd > 0 && model.rejectSd <= WEIGHT_LIMIT,
     'rejectSd',
     'a finite number above 0',
     model.rejectSd,
   );
 }
 
-function checkCounts(model: CommonModel): void {
-  const whole = (name: keyof CommonModel, low: number, high: number): void =>
 function checkCrossingMap(map: Float64Array | undefined): void {
   if (map === undefined) return;
   requireLength(map, 'crossingMap', CROSSING_KNOTS.length);
@@ -45,6 +43,8 @@ function checkCrossingMap(map: Float64Array | undefined): void {
   requireField(map.every(isRising), 'crossingMap', 'rising from 0 to 1', Array.from(map).join(' '));
 }
 
+function checkCounts(model: CommonModel): void {
+  const whole = (name: keyof CommonModel, low: number, high: number): void =>
     requireWhole(model[name] as number, name, low, high);
   whole('signalCount', 1, 4096);
   whole('channelCount', model.signalCount, 4096);

@@ -14,5 +14,5 @@ export { normalCdf, normalDensity, normalQuantile } from './normal-table.ts';
 export * from './probe.ts';
 export { restoreBounds, restoreState, saveBounds, saveState } from './snapshot.ts';
 export { createState, type FilterState, FOLDED, MISSING, PASSED_OVER } from './state.ts';
-export { update } from './update.ts';
 export { trackBounds } from './tracking.ts';
+export { update } from './update.ts';

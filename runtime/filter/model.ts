@@ -33,11 +33,11 @@ export interface CommonModel {
   readonly seasonal: Float64Array;
   readonly coverage: number;
   readonly boundsRate: number;
-  /** (ny × H) */
   /** The tracker's step at h is at most this over h + 5; absent: bounds tracked as in the first bundles. */
   readonly boundsLongRate?: number;
   /** (CROSSING_KNOTS) how often a limit was crossed where those probabilities were said; absent: as said. */
   readonly crossingMap?: Float64Array;
+  /** (ny × H) */
   readonly radius: Float64Array;
   readonly rejectSd: number;
   readonly rejectMaxTicks: number;
