@@ -6,6 +6,7 @@ import { CROSSING_KNOTS } from '@stillwell/protocol';
 import { kernelOf } from './kernels.ts';
 import type { CommonModel, Model } from './model.ts';
 import { requireEach, requireField, requireLength, requireWeights, requireWhole, WEIGHT_LIMIT } from './requirement.ts';
+import { checkResponse } from './response.ts';
 
 /** Largest size of a mean, a clip or a lattice offset, in units of the signal. */
 const UNIT_LIMIT = 1e15;
@@ -21,6 +22,7 @@ export function checkModel(model: Model): void {
   kernelOf(model).check(model);
   checkShapes(model);
   checkChannels(model);
+  if (model.response !== undefined) checkResponse(model, model.response);
   requireWeights(model.seasonal, 'seasonal');
   requireEach(model.radius, 'radius', (value) => value >= 0 && value <= WEIGHT_LIMIT, 'a finite number, zero or more');
   requireField(model.coverage > 0 && model.coverage < 1, 'coverage', 'more than 0 and less than 1', model.coverage);

@@ -6,6 +6,7 @@
  */
 import { kernelOf } from './kernels.ts';
 import type { CommonModel, Model } from './model.ts';
+import { respond } from './response.ts';
 import { type FilterState, fadeTicks } from './state.ts';
 
 /**
@@ -81,6 +82,8 @@ export function forecastPath(
 ): void {
   const H = model.horizon;
   kernelOf(model).paths(model, state.core, state, H, plan, median);
+  if (plan !== null && model.response !== undefined && state.response !== null)
+    respond(model, model.response, state.response, state, plan, median);
   finish(model, state, H, median);
   for (let i = 0; i < model.signalCount; i++) toUnits(model, i, median, i * H, H);
 }

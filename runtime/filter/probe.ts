@@ -10,6 +10,9 @@
  * beyond the clip); all of channel 0 missing for n mod 64 ≥ 48. Reading = offset + step · round((mean + scale · w −
  * offset) / step), with w the number so made.
  *
+ * A model with a response to plans forecasts every path under a plan: input u at step h is the value folded in last of
+ * channel (u + h) mod nc.
+ *
  * Outputs, float64 little-endian, in order: every tick the one-step predictions made before it (nc, from the second tick
  * on); at every eighth tick (n mod 8 = 7) and the last the median path, lower and upper bounds (ny × H each).
  */
@@ -42,6 +45,7 @@ export function runProbe(model: Model, seed: number, ticks: number): ProbeRun {
   const median = new Float64Array(ny * H);
   const lower = new Float64Array(ny * H);
   const upper = new Float64Array(ny * H);
+  const plan = model.response === undefined ? null : new Float64Array((nc - ny) * H);
   const draw = readingGenerator(model, seed);
   const paths = Math.ceil(ticks / 8);
   const outputs = new Uint8Array(8 * (nc * Math.max(0, ticks - 1) + 3 * ny * H * paths));
@@ -60,13 +64,22 @@ export function runProbe(model: Model, seed: number, ticks: number): ProbeRun {
     }
     draw(n, readings);
     update(model, state, n, readings);
-    forecastPath(model, state, median);
+    if (plan !== null) fillPlan(model, state.value, plan);
+    forecastPath(model, state, median, plan);
     trackBounds(model, bounds, state, median);
     if (n % 8 !== 7 && n !== ticks - 1) continue;
     intervalOf(model, bounds, state, median, lower, upper);
     for (const values of [median, lower, upper]) put(values);
   }
   return { outputs, last: Array.from(median.subarray(0, H)) };
+}
+
+/** A plan out of values folded in, as the file head states. */
+function fillPlan(model: Model, values: Float64Array, plan: Float64Array): void {
+  const { channelCount: nc, signalCount: ny, horizon: H } = model;
+  for (let u = 0; u < nc - ny; u++) {
+    for (let h = 1; h <= H; h++) plan[u * H + h - 1] = values[(u + h) % nc];
+  }
 }
 
 /** Fills the readings of tick n, ticks in order, as the file head states. */

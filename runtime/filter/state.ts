@@ -6,6 +6,7 @@
 import type { Core } from './kernel.ts';
 import { kernelOf } from './kernels.ts';
 import type { CommonModel, Model } from './model.ts';
+import { createResponseBuffers, type ResponseBuffers } from './response.ts';
 
 /** Values of `observed`: no reading at the tick. */
 export const MISSING = 0;
@@ -54,6 +55,8 @@ export interface FilterState {
   readonly core: Core;
   /** (d) the predictive state */
   readonly x: Float64Array;
+  /** Of the response to plans; null where the model has none. */
+  readonly response: ResponseBuffers | null;
   /** (nc) clips, standardised */
   readonly low: Float64Array;
   readonly high: Float64Array;
@@ -81,6 +84,7 @@ export function createState(model: Model): FilterState {
     passed: new Int32Array(nc),
     core,
     x: core.x,
+    response: model.response === undefined ? null : createResponseBuffers(model, model.response),
     low: standardised(model.clipLow),
     high: standardised(model.clipHigh),
   };

@@ -2,7 +2,7 @@
  * Synthetic bundles and models for tests: shapes as a real site's, weights drawn from a seed and small enough that the
  * forecasts are tame, tensors on the wire as a maker would write them. Not fitted to anything.
  */
-import type { Bundle, BundleChannel, Tensor } from '@stillwell/protocol';
+import type { Bundle, BundleChannel, ResponseTensors, Tensor } from '@stillwell/protocol';
 import { ARITHMETIC, BUNDLE_FORMAT } from '@stillwell/protocol';
 import { type FilterState, type LinearCore, type LinearModel, modelFromBundle } from '@stillwell/runtime/filter';
 
@@ -25,6 +25,8 @@ export interface ModelChoice {
   readonly level?: true;
   /** With an own part. */
   readonly own?: true;
+  /** With a response to plans of all inputs. */
+  readonly response?: true;
   readonly seasonalPeriod?: number;
   readonly seasonalBins?: number;
   readonly coverage?: number;
@@ -96,6 +98,7 @@ export function syntheticBundle(choice: ModelChoice = {}): Bundle {
         ? { own: integerTensor('i8', ny * r, ownWidth, integers(ny * r * ownWidth, 127), rows(ny * r, 1e-3 / 127)) }
         : {}),
     },
+    ...(choice.response === true ? { response: syntheticResponse(ny, nc - ny, d, horizon, integers) } : {}),
     seasonal: {
       periodTicks: choice.seasonalPeriod ?? 24,
       table: integerTensor('i8', ny, bins, integers(ny * bins, 127), rows(ny, 0.5 / 127)),
@@ -142,6 +145,29 @@ export function syntheticBundle(choice: ModelChoice = {}): Bundle {
       override: null,
     },
     probe: { seed: 1, ticks: 0, digest: new Uint8Array(32), last: [] },
+  };
+}
+
+/** Three poles, two curves an input, looks at the first and the last step. */
+function syntheticResponse(
+  ny: number,
+  nu: number,
+  d: number,
+  horizon: number,
+  integers: (count: number, size: number) => number[],
+): ResponseTensors {
+  const rows = (count: number, scale: number): number[] => Array.from({ length: count }, () => scale);
+  const looks = horizon > 1 ? [1, horizon] : [1];
+  const width = d + ny * looks.length;
+  return {
+    inputs: Array.from({ length: nu }, (_, u) => u),
+    decays: [0.5, 0.8, 0.95],
+    delay: Array.from({ length: ny * nu }, (_, k) => k % Math.min(3, horizon)),
+    gain: integerTensor('i16', ny, nu * 5, integers(ny * nu * 5, 32767), rows(ny, 0.5 / 32767)),
+    looks,
+    readout: integerTensor('i16', nu * 2, width, integers(nu * 2 * width, 32767), rows(nu * 2, 0.3 / 32767)),
+    basis: integerTensor('i8', nu * 2, horizon, integers(nu * 2 * horizon, 127), rows(nu * 2, 1 / 127)),
+    surprise: Array.from({ length: nu }, () => 0.5),
   };
 }
 
