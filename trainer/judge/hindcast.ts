@@ -10,6 +10,7 @@ import { withoutExcluded } from '../exclusions.ts';
 import type { Series } from '../history/series.ts';
 import type { TickSpan } from '../span.ts';
 import { Coverage } from './coverage.ts';
+import { type PlanTrial, plannerOf } from './plan-trial.ts';
 import { type Moment, replay } from './replay.ts';
 import { carryForward, makeRivals, type Rival } from './rivals.ts';
 import { Scores } from './scores.ts';
@@ -64,6 +65,8 @@ export interface HindcastSpan extends TickSpan {
   readonly learn: TickSpan | null;
   /** Model whose clips the readings are scored under, so that two models are held against the same; the one replayed. */
   readonly clipAs?: Model;
+  /** What the forecasts are told of the future of the planned inputs (counted from the first input); nothing. */
+  readonly plan?: { readonly trial: PlanTrial; readonly inputs: readonly number[] };
 }
 
 /** Paths kept for plots: about this many, evenly spread. */
@@ -97,7 +100,9 @@ export function hindcast(model: Model, series: Series, span: HindcastSpan, units
     learn: within(span.learn, series),
   });
   const tally = new Tally(ny, H, from, to, rivals, readings);
-  replay(model, series, { fromTick: from - 1, toTick: to }, (moment) => tally.visit(moment, series));
+  const { trial, inputs } = span.plan ?? { trial: 'none', inputs: [] };
+  const planner = plannerOf(trial, model, series, { fromTick: from, toTick: to }, inputs);
+  replay(model, series, { fromTick: from - 1, toTick: to }, (moment) => tally.visit(moment, series), planner);
   return tally.result(model, series, units);
 }
 

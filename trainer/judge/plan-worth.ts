@@ -1,0 +1,96 @@
+/**
+ * What plans of the inputs are worth at a site: the same origins forecast without a plan, with what truly came, and with a
+ * plan that was not kept. The second must lie below the first; the third shows what trusting a wrong plan costs.
+ */
+import type { Model } from '@stillwell/runtime/filter';
+import { withoutExcluded } from '../exclusions.ts';
+import type { Series } from '../history/series.ts';
+import type { TickSpan } from '../span.ts';
+import { type PlanTrial, plannerOf } from './plan-trial.ts';
+import { replayPaths } from './replay.ts';
+import { meanOf, Scores } from './scores.ts';
+
+/** The trials, in the order in which they are told. */
+export const PLAN_TRIALS = ['none', 'perfect', 'wrong'] as const satisfies readonly PlanTrial[];
+
+/**
+ * shapes  mse of each trial (ny × H), entry i·H + h - 1; mean (ny) over the steps
+ * units   standardised²
+ */
+export interface PlanWorth {
+  readonly signals: readonly string[];
+  /** Inputs that were planned. */
+  readonly inputs: readonly string[];
+  readonly origins: number;
+  readonly trials: Readonly<Record<PlanTrial, { readonly mse: Float64Array; readonly mean: readonly number[] }>>;
+}
+
+/** Origins used are thinned to about this many: a mean of more says the same. */
+const MOST_ORIGINS = 3000;
+
+/**
+ * Inputs of a model that plans reach, counted from the first input.
+ *
+ * shapes  wanted: inputs that have plans, counted likewise
+ * units   none
+ * throws  nothing
+ * source  none
+ * cost    trivial
+ */
+export function reachedInputs(model: Model, wanted: readonly number[]): readonly number[] {
+  if (model.kind === 'driven') return wanted;
+  const inputs = [...(model.response?.inputs ?? [])];
+  return wanted.filter((u) => inputs.includes(u));
+}
+
+/**
+ * Replays a span once a trial; null where plans reach no input.
+ *
+ * shapes  span of indices into the series; planned counted from the first input
+ * units   standardised²
+ * throws  FilterError if the model does not fit the series
+ * source  none
+ * cost    three replays
+ */
+export function planWorth(model: Model, series: Series, span: TickSpan, planned: readonly number[]): PlanWorth | null {
+  const reached = reachedInputs(model, planned);
+  if (reached.length === 0) return null;
+  const { signalCount: ny, horizon: H } = model;
+  const count = span.toTick - span.fromTick - H + 1;
+  const judged = withoutExcluded(series);
+  const every = Math.max(1, Math.ceil(count / MOST_ORIGINS));
+  const trial = (name: PlanTrial) => {
+    const scores = new Scores(ny * H);
+    const planner = plannerOf(name, model, series, span, reached);
+    const visited = { fromTick: span.fromTick - 1, toTick: span.toTick - H };
+    replayPaths(
+      model,
+      series,
+      visited,
+      ({ at, median }) => {
+        if ((at - visited.fromTick) % every === 0) scorePath(model, judged, at, median, scores);
+      },
+      planner,
+    );
+    const mse = scores.mse();
+    return { mse, mean: Array.from({ length: ny }, (_, i) => meanOf(mse, i * H, (i + 1) * H)) };
+  };
+  return {
+    signals: series.names.slice(0, ny),
+    inputs: reached.map((u) => series.names[ny + u]),
+    origins: Math.ceil(count / every),
+    trials: { none: trial('none'), perfect: trial('perfect'), wrong: trial('wrong') },
+  };
+}
+
+function scorePath(model: Model, series: Series, at: number, median: Float64Array, scores: Scores): void {
+  const { signalCount: ny, horizon: H, clipLow, clipHigh, scale } = model;
+  for (let h = 1; h <= H; h++) {
+    for (let i = 0; i < ny; i++) {
+      const reading = series.values[i][at + h];
+      if (Number.isNaN(reading)) continue;
+      const clipped = Math.min(clipHigh[i], Math.max(clipLow[i], reading));
+      scores.add(i * H + h - 1, (median[i * H + h - 1] - clipped) / scale[i]);
+    }
+  }
+}
