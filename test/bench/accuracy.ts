@@ -3,8 +3,9 @@ import { existsSync } from 'node:fs';
 import { join } from 'node:path';
 import { parseSite, type Site } from '@stillwell/protocol';
 import { FIT_DEFAULTS, type FitResult, fit as fitHistory, fitWindowRidge, loadHistory } from '@stillwell/trainer';
+import { openRows } from './accuracy-open.ts';
 import type { BenchOptions, Row } from './harness.ts';
-import { row } from './harness.ts';
+import { isWanted, row } from './harness.ts';
 import { knownPlant } from './known-plant.ts';
 
 /** The published split keeps 12, 4 and 4 months of 30 days. */
@@ -17,6 +18,12 @@ const SEAL_BYTES = 128;
 
 /** Rows of the suite. */
 export async function* rows(options: BenchOptions): AsyncIterable<Row> {
+  if (isWanted(options, 'ETTh1')) yield* publishedSplit(options);
+  if (isWanted(options, 'known plant')) yield* knownOptimum();
+  yield* openRows(options);
+}
+
+async function* publishedSplit(options: BenchOptions): AsyncIterable<Row> {
   const file = options.data === null ? null : join(options.data, 'ETTh1.csv');
   if (file !== null && existsSync(file)) {
     yield* measured(file, 24, { 24: 0.294 });
@@ -24,7 +31,6 @@ export async function* rows(options: BenchOptions): AsyncIterable<Row> {
   } else {
     options.note('no ETTh1.csv given with --data: measured cases are left out');
   }
-  yield* knownOptimum();
 }
 
 async function* measured(file: string, horizon: number, bars: Readonly<Record<number, number>>): AsyncIterable<Row> {

@@ -17,6 +17,8 @@ export type SuiteName = (typeof SUITES)[number];
 export interface BenchOptions {
   /** Folder with measured series (ETTh1.csv); null: seeded synthetic data instead. */
   readonly data: string | null;
+  /** Only cases whose name holds this word, of suites that can leave cases out; null: all. */
+  readonly only: string | null;
   /** A plain line for people, on stderr under --json. */
   readonly note: (line: string) => void;
 }
@@ -38,6 +40,11 @@ export interface Row {
 /** A suite's module. */
 export interface Suite {
   rows(options: BenchOptions): AsyncIterable<Row> | Promise<readonly Row[]>;
+}
+
+/** True where a case, or a group of cases, by that name was asked for. */
+export function isWanted({ only }: BenchOptions, name: string): boolean {
+  return only === null || name.toLowerCase().includes(only.toLowerCase());
 }
 
 /** Fills in ratio and holds. The bar is on `ours`. */

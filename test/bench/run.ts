@@ -1,12 +1,12 @@
 /**
- * `npm run bench -- SUITE [--json] [--data DIR]`: runs one suite and prints its rows as they come, one JSON object a line
+ * `npm run bench -- SUITE [--json] [--data DIR] [--case WORD]`: runs one suite and prints its rows as they come, one JSON object a line
  * with --json. Exit 0 when the suite ran, 2 when it was asked for wrongly.
  */
 import { existsSync, statSync } from 'node:fs';
 import { parseArgs } from 'node:util';
 import { type BenchOptions, type Row, SUITES, type Suite, type SuiteName, tableHead, tableRow } from './harness.ts';
 
-const USAGE = `usage: npm run bench -- SUITE [--json] [--data DIR]\n  SUITE  one of ${SUITES.join(', ')}\n  --json  one JSON object a line\n  --data  folder with measured series (ETTh1.csv)`;
+const USAGE = `usage: npm run bench -- SUITE [--json] [--data DIR] [--case WORD]\n  SUITE  one of ${SUITES.join(', ')}\n  --json  one JSON object a line\n  --data  folder with measured series (ETTh1.csv)\n  --case  only cases whose name holds WORD (suite accuracy)`;
 
 class UsageError extends Error {}
 
@@ -14,13 +14,14 @@ interface Asked {
   readonly suite: SuiteName;
   readonly json: boolean;
   readonly data: string | null;
+  readonly only: string | null;
 }
 
 function readArguments(): Asked {
-  let parsed: { values: { json?: boolean; data?: string }; positionals: string[] };
+  let parsed: { values: { json?: boolean; data?: string; case?: string }; positionals: string[] };
   try {
     parsed = parseArgs({
-      options: { json: { type: 'boolean' }, data: { type: 'string' } },
+      options: { json: { type: 'boolean' }, data: { type: 'string' }, case: { type: 'string' } },
       allowPositionals: true,
     });
   } catch (error) {
@@ -33,7 +34,7 @@ function readArguments(): Asked {
   const data = values.data ?? null;
   if (data !== null && !statSync(data, { throwIfNoEntry: false })?.isDirectory())
     throw new UsageError(`--data: expected a folder, got ${data}, which is none`);
-  return { suite, json: values.json === true, data };
+  return { suite, json: values.json === true, data, only: values.case ?? null };
 }
 
 async function* each(rows: AsyncIterable<Row> | Promise<readonly Row[]>): AsyncIterable<Row> {
@@ -50,7 +51,7 @@ async function main(): Promise<void> {
     return;
   }
   const suite = (await import(module.href)) as Suite;
-  const options: BenchOptions = { data: asked.data, note: say };
+  const options: BenchOptions = { data: asked.data, only: asked.only, note: say };
   if (!asked.json) say(tableHead());
   for await (const line of each(suite.rows(options)))
     process.stdout.write(`${asked.json ? JSON.stringify(line) : tableRow(line)}\n`);
