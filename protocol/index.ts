@@ -1,5 +1,6 @@
 export * from './bundle.ts';
 export { bundleDigest, decodeBundle, encodeBundle } from './bundle-document.ts';
+export type { DrivenTensors, FeatureTensors } from './bundle-features.ts';
 export { decode, encode } from './codec.ts';
 export { sha256, toHex } from './digest.ts';
 export { formatDuration, parseDuration } from './duration.ts';
@@ -31,8 +32,8 @@ export { bundleSchemaHash, describeSchemaDifference, schemaHash } from './schema
 export * from './seal.ts';
 export * from './segment/index.ts';
 export * from './site.ts';
-export { type ExcludedSpan, type ExcludedWhile, type Exclusion, plainExclusion } from './site-exclude.ts';
-export { formatSite } from './site-format.ts';
+export type { ExcludedSpan, ExcludedWhile, Exclusion } from './site-exclude.ts';
+export { formatExclude, formatSite } from './site-format.ts';
 export * from './state.ts';
 export * from './tensor.ts';
 export * from './topics.ts';

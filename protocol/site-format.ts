@@ -5,7 +5,7 @@
 import { Document, isMap, isNode, isScalar, isSeq } from 'yaml';
 import { formatDuration } from './duration.ts';
 import type { Input, PayloadReading, Signal, Site } from './site.ts';
-import { plainExclusion } from './site-exclude.ts';
+import { type Exclusion, plainExclusion } from './site-exclude.ts';
 
 const plainPayload = (how: PayloadReading): unknown => {
   if (how.kind === 'number') return 'number';
@@ -92,6 +92,16 @@ export const formatSite = (site: Site, comments: Readonly<Record<string, string>
   for (const [path, text] of Object.entries(comments)) {
     if (path === '') document.commentBefore = text.split('\n').map(oneLine).join('\n');
     else addComment(document, path, text);
+  }
+  return document.toString({ lineWidth: 0, flowCollectionPadding: false });
+};
+
+/** The key `exclude` of a site file by itself, an entry a line, as it may be pasted into one. */
+export const formatExclude = (entries: readonly Exclusion[]): string => {
+  const document = new Document({ exclude: entries.map(plainExclusion) }, { version: '1.2', schema: 'core' });
+  for (let i = 0; i < entries.length; i++) {
+    const node: unknown = document.getIn(['exclude', i], true);
+    if (isMap(node)) node.flow = true;
   }
   return document.toString({ lineWidth: 0, flowCollectionPadding: false });
 };

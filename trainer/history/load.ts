@@ -32,7 +32,7 @@ export function prepare(history: History, site: Site, judgedShare = 0): LoadedHi
   const plausibility = plausibilityOf(taught, site, judgedFromMs(history, site.tickMs, judgedShare));
   const laid = layOnTicks(history, site, lattices, plausibility);
   const series = mark(seen === history ? laid : layOnTicks(seen, site, lattices, plausibility));
-  return { history, series, lattices, survey: surveyHistory(history, laid, site, lattices) };
+  return { history, series, lattices, survey: surveyHistory(history, laid, site, lattices, series) };
 }
 
 function judgedFromMs(history: History, tickMs: number, share: number): number {

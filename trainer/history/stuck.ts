@@ -50,9 +50,35 @@ function runsOf(values: Float64Array, resting: ValuesSeen['resting']): Runs {
   return { starts: starts.take(), lengths: lengths.take() };
 }
 
-function stuckFinding(series: Series, channel: number, { starts, lengths }: Runs): Finding | null {
+/** Runs of this length are far longer than is usual among those. */
+function leastStuck(lengths: Float64Array): { readonly usual: number; readonly least: number } {
   const usual = quantiles(lengths, [0.99])[0] as number;
-  const least = Math.max(FEWEST_TICKS, TIMES_USUAL * usual);
+  return { usual, least: Math.max(FEWEST_TICKS, TIMES_USUAL * usual) };
+}
+
+/** A stretch in which one signal stands still for far longer than usual; ticks fromIndex <= t < toIndex. */
+export interface StuckStretch {
+  readonly channel: number;
+  readonly fromIndex: number;
+  readonly toIndex: number;
+  readonly value: number;
+}
+
+/** All such stretches of a signal that otherwise moves, in order of time. */
+export function stuckStretches(series: Series, channel: number, seen: ValuesSeen): StuckStretch[] {
+  if (seen.readings === 0 || !(seen.commonestShare < NEAR_CONSTANT)) return [];
+  const values = series.values[channel] as Float64Array;
+  const { starts, lengths } = runsOf(values, seen.resting);
+  if (lengths.length === 0) return [];
+  const { least } = leastStuck(lengths);
+  return Array.from(starts).flatMap((at, k) => {
+    const length = lengths[k] as number;
+    return length < least ? [] : [{ channel, fromIndex: at, toIndex: at + length, value: values[at] as number }];
+  });
+}
+
+function stuckFinding(series: Series, channel: number, { starts, lengths }: Runs): Finding | null {
+  const { usual, least } = leastStuck(lengths);
   const count = lengths.reduce((sum, length) => sum + (length >= least ? 1 : 0), 0);
   if (count === 0) return null;
   const longest = lengths.indexOf(lengths.reduce((a, b) => Math.max(a, b)));
@@ -69,7 +95,7 @@ function stuckFinding(series: Series, channel: number, { starts, lengths }: Runs
     to: iso(to),
     count,
     sentence: `${name} stands still ${counted(count, 'time')} for far longer than usual (${counted(usual, 'tick')}); the longest is ${lengthOf(to - from)} at ${figure(value)} from ${iso(from)}.`,
-    advice: 'A sensor or a link that hangs repeats its last value: empty those readings if so.',
+    advice: 'A sensor or a link that hangs repeats its last value: exclude those readings if so.',
   };
 }
 

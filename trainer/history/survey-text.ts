@@ -3,6 +3,7 @@
  */
 import { textTable } from '../text-table.ts';
 import { figure, lengthOf, percent } from './finding.ts';
+import { suggestionsText } from './suggestions.ts';
 import type { Survey, SurveyedSignal } from './survey.ts';
 
 const HEAD = [
@@ -76,5 +77,14 @@ export function surveyText(survey: Survey): string {
   else lines.push(`Findings (${survey.findings.length}; !! spoils a fit, ! look at it):`);
   for (const { weight, sentence, advice } of survey.findings)
     lines.push(` ${SIGNS[weight]} ${folded(advice === 'Nothing to do.' ? sentence : `${sentence} ${advice}`, '    ')}`);
+  if (survey.suggestions.length > 0)
+    lines.push(
+      '',
+      folded(
+        'Perhaps not to be learned from. Where it was maintenance or a fault, paste the entry into the site file and write down why; a flood or a frost should teach. Nothing is left out by itself.',
+        '',
+      ),
+      suggestionsText(survey.suggestions, '  '),
+    );
   return `${lines.join('\n')}\n`;
 }

@@ -4,6 +4,7 @@
  */
 import { basename } from 'node:path';
 import type { Signal, Site } from '@stillwell/protocol';
+import { withoutExcluded } from '../exclusions.ts';
 import { type Cadence, cadenceFindings, cadenceOf, suggestTick } from './cadence.ts';
 import { channelsOf } from './channels.ts';
 import { clockChangeFindings } from './clock-changes.ts';
@@ -17,6 +18,7 @@ import { latticeFindings, singleFindings } from './lattice-findings.ts';
 import { type FoundLattice, findLattices } from './resolution.ts';
 import type { Series } from './series.ts';
 import { NEAR_CONSTANT, stuckFindings } from './stuck.ts';
+import { type Suggestion, suggestExclusions } from './suggestions.ts';
 import { timeOrder } from './ticks.ts';
 import { timeOrderFindings } from './time-order.ts';
 import { seeValues, type ValuesSeen } from './values-seen.ts';
@@ -64,6 +66,8 @@ export interface Survey {
   readonly signals: readonly SurveyedSignal[];
   /** The weightiest first. */
   readonly findings: readonly Finding[];
+  /** Time that perhaps should not teach, for a person to decide, as entries of the site file's `exclude`. */
+  readonly suggestions: readonly Suggestion[];
 }
 
 function freezeDeep<T>(value: T): T {
@@ -132,12 +136,14 @@ const WEIGHTS = { serious: 0, look: 1, note: 2 } as const;
  *
  * series    the same history laid on ticks
  * lattices  as layOnTicks had them; found again when absent
+ * teaching  the series with what the site file excludes told apart; the same where it excludes nothing
  */
 export function surveyHistory(
   history: History,
   series: Series,
   site: Site,
   lattices: readonly FoundLattice[] = findLattices(history, site),
+  teaching: Series = series,
 ): Survey {
   const orders = new Map(history.channels.map(({ times }) => [times, null as Uint32Array | null]));
   for (const times of orders.keys()) orders.set(times, timeOrder(times));
@@ -193,5 +199,6 @@ export function surveyHistory(
     zone: history.zone,
     signals,
     findings,
+    suggestions: suggestExclusions(withoutExcluded(teaching), seen),
   });
 }

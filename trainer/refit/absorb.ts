@@ -41,9 +41,10 @@ export function absorb(archive: Archive, files: History | null, site: Site): Abs
   const series = overlay(archive, before, channels, site);
   const history = files === null ? ofArchive : joined(files, ofArchive);
   const found = findLattices(history, site).map((one, c) => ({ ...one, ...lattices[c]! }));
+  const marked = believe(history, site).mark(series);
   return {
-    series: believe(history, site).mark(series),
-    survey: surveyHistory(history, series, site, found),
+    series: marked,
+    survey: surveyHistory(history, series, site, found, marked),
     lattices,
     newFromTick: before === null ? series.firstTick : before.firstTick + before.ticks,
   };
