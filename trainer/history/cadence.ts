@@ -16,6 +16,9 @@ const STEPS_MS = [
 ];
 /** A usual interval this much below a step still counts as that step: clocks waver. */
 const WAVER = 1.02;
+/** Share of the intervals that must be multiples of the commonest one, and how far off one may be, in that interval. */
+const MULTIPLES_SHARE = 0.8;
+const MULTIPLE_OFF = 0.1;
 /** Jitter beyond this share of the interval is worth a word. */
 const JITTER_SHARE = 0.1;
 
@@ -45,15 +48,34 @@ export function cadenceOf(channel: ChannelReadings, order: Uint32Array | null): 
 }
 
 /**
- * The median, unless many readings are missing: then the median is a multiple of the true interval, which still stands at
- * the lower quartile in a quarter of the cases or more.
+ * The median, unless many readings are missing: then the median is a multiple of the true interval, which is still the
+ * commonest one, and the others are multiples of it.
  */
 function usualInterval(intervals: Float64Array): number {
-  const [quarter, median] = quantiles(intervals, [0.25, 0.5]) as [number, number];
-  const multiple = Math.round(median / quarter);
-  if (!(multiple >= 2 && Math.abs(median / quarter - multiple) < (WAVER - 1) * multiple)) return median;
-  const alike = intervals.filter((interval) => interval < quarter * WAVER && interval * WAVER > quarter).length;
-  return alike >= intervals.length / 4 ? quarter : median;
+  const median = quantiles(intervals, [0.5])[0] as number;
+  const beat = commonest(intervals);
+  if (!(median > beat * WAVER)) return median;
+  const multiples = intervals.filter((interval) => isMultiple(interval / beat)).length;
+  return multiples >= MULTIPLES_SHARE * intervals.length ? beat : median;
+}
+
+function isMultiple(ratio: number): boolean {
+  const whole = Math.round(ratio);
+  return whole >= 1 && Math.abs(ratio - whole) <= MULTIPLE_OFF;
+}
+
+/** Middle of the narrowest crowd of intervals: the most that lie within a wavering clock of each other. */
+function commonest(intervals: Float64Array): number {
+  const sorted = intervals.slice().sort();
+  let best = Number.NaN;
+  let most = 0;
+  for (let from = 0, to = 0; from < sorted.length; from++) {
+    while (to < sorted.length && (sorted[to] as number) <= (sorted[from] as number) * WAVER) to++;
+    if (to - from <= most) continue;
+    most = to - from;
+    best = sorted[(from + to) >> 1] as number;
+  }
+  return best;
 }
 
 /** Tick for signals read at these usual intervals: the smallest step no signal is slower than. */

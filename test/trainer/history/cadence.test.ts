@@ -15,9 +15,19 @@ function hourly(missingShare: number) {
 }
 
 describe('the usual interval', () => {
-  test.each([0, 0.2, 0.45, 0.6])('of an hourly log with a share of %d missing is an hour', (missingShare) => {
-    expect(cadenceOf(hourly(missingShare), null).intervalMs).toBe(HOUR);
-    expect(suggestTick([cadenceOf(hourly(missingShare), null).intervalMs])).toBe(HOUR);
+  test.each([0, 0.2, 0.45, 0.6, 0.7, 0.8])(
+    'of an hourly log with a share of %d missing is an hour',
+    (missingShare) => {
+      expect(cadenceOf(hourly(missingShare), null).intervalMs).toBe(HOUR);
+      expect(suggestTick([cadenceOf(hourly(missingShare), null).intervalMs])).toBe(HOUR);
+    },
+  );
+
+  test('and so though its clock wavers', () => {
+    const random = seededNumbers(6);
+    const { times } = hourly(0.8);
+    const wavering = readAt(Array.from(times, (time) => time + Math.round(20_000 * random())));
+    expect(suggestTick([cadenceOf(wavering, null).intervalMs])).toBe(HOUR);
   });
 
   test('of a log that keeps every second hour, with a few odd readings between, stays two hours', () => {
