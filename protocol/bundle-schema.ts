@@ -52,6 +52,7 @@ export const boundsSchema = z.strictObject({
   rate: share,
   longRate: z.number().positive().max(100).optional(),
   crossing: z.array(z.number().min(0).max(1)).length(CROSSING_KNOTS.length).optional(),
+  crossingFresh: z.number().positive().max(1).optional(),
 });
 
 /** When a reading is passed over. */

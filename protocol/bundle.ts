@@ -108,6 +108,8 @@ export interface Bundle {
     readonly longRate?: number | undefined;
     /** How often a limit was crossed where CROSSING_KNOTS were said, rising; said probabilities are put right by it. Absent: as said. */
     readonly crossing?: readonly number[] | undefined;
+    /** Share of the one-step error's spread that is new at every later step, when crossings are reckoned. Absent: 1. */
+    readonly crossingFresh?: number | undefined;
   };
   /** Readings further than rejectSd × residualScale from their forecast are passed over, at most maxTicks in a row. */
   readonly guard: { readonly rejectSd: number; readonly maxTicks: number };

@@ -104,6 +104,7 @@ function bundleWithoutProbe(parts: Composition): Bundle {
       rate: around.boundsRate,
       ...(calibration.boundsLongRate === undefined ? {} : { longRate: calibration.boundsLongRate }),
       ...(calibration.crossingMap === undefined ? {} : { crossing: Array.from(calibration.crossingMap) }),
+      ...(calibration.crossingFresh === undefined ? {} : { crossingFresh: calibration.crossingFresh }),
     },
     guard: { rejectSd: calibration.rejectSd, maxTicks: calibration.rejectMaxTicks },
     warmupTicks: around.warmupTicks,

@@ -11,6 +11,7 @@ import { bankName, featureCount } from './identify/bank.ts';
 import { type Prepared, prepareHistory } from './identify/prepare.ts';
 import { type Taught, teach } from './identify/teach.ts';
 import { calibrate } from './judge/calibrate.ts';
+import { declaredLimits } from './judge/crossings.ts';
 import { judge, type Verdicts, verdictSteps } from './judge/gate.ts';
 import { type Hindcast, hindcast } from './judge/hindcast.ts';
 import { type Reliance, reliance } from './judge/reliance.ts';
@@ -150,8 +151,14 @@ function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Pr
   const choice = chooseKind({ series, site, options, split, prepared, taught, around, bytesLeft });
   const { candidate } = choice;
   const span = indices(split.calibrate, series);
-  const calibration = calibrate(candidate.rounded, prepared.calm, span, options.coverage);
-  const parts = { ...partsOf(candidate.sections, candidate.settled), calibration };
+  const calibration = calibrate(
+    candidate.rounded,
+    prepared.calm,
+    span,
+    options.coverage,
+    declaredLimits(site.signals.map((signal) => signal.limits)),
+  );
+  const parts = { ...partsOf(candidate.sections, candidate.settled), calibration, ...responseOf(found) };
   return { choice, bundle: composeBundle(parts), parts, float: withCalibration(candidate.float, calibration) };
 }
 

@@ -30,6 +30,8 @@ export function checkModel(model: Model): void {
   const { boundsLongRate: longRate = 0 } = model;
   requireField(longRate >= 0 && longRate <= 100, 'boundsLongRate', '0 to 100', longRate);
   checkCrossingMap(model.crossingMap);
+  const { crossingFresh: fresh = 1 } = model;
+  requireField(fresh > 0 && fresh <= 1, 'crossingFresh', 'more than 0 and at most 1', fresh);
   requireField(
     model.rejectSd > 0 && model.rejectSd <= WEIGHT_LIMIT,
     'rejectSd',

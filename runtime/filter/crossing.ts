@@ -2,7 +2,8 @@
  * How probable it is that a signal crosses a limit within the horizon, and by which step it is more likely than not.
  * Advice for people, never for an interlock: the forecast errors are taken as normal, with the bounds' half-width as that
  * many standard deviations, and as a chain e(h) = φ e(h−1) + w, with the sd of w that of the one-step error σ₁, as in a
- * random walk or an autoregression. Variances σ_h² then fix φ_h = √(1 − σ₁²/σ_h²) σ_h / σ_{h−1}.
+ * random walk or an autoregression, times `crossingFresh`: part of a one-step error is noise of the reading, which does not
+ * come anew at every step. Variances σ_h² then fix φ_h = √(1 − σ_w²/σ_h²) σ_h / σ_{h−1}.
  *
  * The chance of having stayed below is multiplied up step by step; after each step the error, given that it stayed below,
  * is put back to a normal one by its mean and variance (moments of the truncated normal distribution). Simulation of
@@ -50,7 +51,7 @@ export function crossing(
   const sign = side === 'above' ? 1 : -1;
   const perRadius = 1 / bounds.quantile;
   radiiOf(model, bounds, state, signal, bounds.scratch, 0);
-  const fresh = bounds.radius[signal * H] * perRadius;
+  const fresh = (model.crossingFresh ?? 1) * bounds.radius[signal * H] * perRadius;
   let stayed = 1;
   let largest = 0;
   let mean = 0;

@@ -50,6 +50,7 @@ function commonOf(bundle: Bundle): Omit<CommonModel, 'order'> {
     boundsRate: bundle.bounds.rate,
     ...(bundle.bounds.longRate === undefined ? {} : { boundsLongRate: bundle.bounds.longRate }),
     ...(bundle.bounds.crossing === undefined ? {} : { crossingMap: Float64Array.from(bundle.bounds.crossing) }),
+    ...(bundle.bounds.crossingFresh === undefined ? {} : { crossingFresh: bundle.bounds.crossingFresh }),
     radius: dequantise(bundle.bounds.radius),
     rejectSd: bundle.guard.rejectSd,
     rejectMaxTicks: bundle.guard.maxTicks,

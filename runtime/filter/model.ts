@@ -37,6 +37,8 @@ export interface CommonModel {
   readonly boundsLongRate?: number;
   /** (CROSSING_KNOTS) how often a limit was crossed where those probabilities were said; absent: as said. */
   readonly crossingMap?: Float64Array;
+  /** Share of the one-step error's spread that is new at every later step of a crossing; absent: 1. */
+  readonly crossingFresh?: number;
   /** (ny × H) */
   readonly radius: Float64Array;
   readonly rejectSd: number;

@@ -33,15 +33,18 @@ export class Coverage {
 }
 
 /**
- * Half-width that holds the stated share of future errors, from errors of the past.
+ * Half-width that holds the stated share of future errors, from errors of the past. Errors at a long step repeat themselves
+ * from tick to tick; the fewer of them stand for themselves, the further out the half-width is taken.
  *
- * shapes  sizes (n) absolute errors, overwritten by sorting
+ * shapes  sizes (n) absolute errors, overwritten by sorting; independent: how many of them stand for themselves
  * units   as the errors
  * throws  nothing; the caller gives at least one
- * source  split conformal prediction: the ⌈(n + 1) coverage⌉-th smallest; Papadopoulos and others, ECML (2002)
+ * source  split conformal prediction, the ⌈(n + 1) coverage⌉-th smallest: Papadopoulos and others, ECML (2002); blocks in
+ *         place of single errors: Chernozhukov, Wüthrich & Zhu, COLT (2018), of which only the count is taken
  * cost    O(n log n)
  */
-export function conformalRadius(sizes: Float64Array, coverage: number): number {
+export function conformalRadius(sizes: Float64Array, coverage: number, independent = sizes.length): number {
   sizes.sort();
-  return sizes[Math.min(sizes.length, Math.ceil((sizes.length + 1) * coverage)) - 1];
+  const share = (1 + 1 / independent) * coverage;
+  return sizes[Math.min(sizes.length, Math.ceil(sizes.length * share)) - 1];
 }

@@ -5,6 +5,9 @@
  */
 import type { Hindcast } from './hindcast.ts';
 import { meanOf, skillScore } from './scores.ts';
+import { verdictSteps } from './steps.ts';
+
+export { verdictSteps } from './steps.ts';
 
 /** Rivals that anyone would guess; the gate asks for skill over these. The window ridge is reported beside them. */
 const SIMPLE_RIVALS: readonly string[] = ['persistence', 'seasonal persistence', 'drift'];
@@ -67,12 +70,6 @@ export function judge(hindcast: Hindcast): Verdicts {
     hasSkill,
     sentence: wholeSentence(signals.length, better, meanSkill, hasSkill),
   });
-}
-
-/** Steps the verdicts stand for: 1, H/4, H/2 and H, without repeats. */
-export function verdictSteps(horizon: number): number[] {
-  const steps = [1, Math.round(horizon / 4), Math.round(horizon / 2), horizon].map((h) => Math.max(1, h));
-  return [...new Set(steps)].sort((a, b) => a - b);
 }
 
 /** Index of the strongest simple rival over some steps of a signal; -1 where there is none to compare with. */

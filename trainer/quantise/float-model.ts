@@ -35,6 +35,11 @@ export interface Calibration {
   readonly boundsLongRate?: number;
   /** What said crossing probabilities come to; absent: as said. */
   readonly crossingMap?: Float64Array;
+  /** Share of the one-step error's spread that is new at every later step of a crossing. */
+  readonly crossingFresh?: number;
+  /** Readings of the calibration part that the guard passed over, and the gain in squared error of leaving it open. */
+  readonly passedOver?: number;
+  readonly guardCost?: number;
 }
 
 /**
@@ -84,6 +89,7 @@ export function floatModel(factors: Factors, around: Surroundings, calibration: 
     warmupTicks: around.warmupTicks,
     ...(calibration.boundsLongRate === undefined ? {} : { boundsLongRate: calibration.boundsLongRate }),
     ...(calibration.crossingMap === undefined ? {} : { crossingMap: calibration.crossingMap }),
+    ...(calibration.crossingFresh === undefined ? {} : { crossingFresh: calibration.crossingFresh }),
   };
 }
 
@@ -102,5 +108,6 @@ export function openCalibration(channelCount: number, cells: number): Calibratio
     rejectMaxTicks: 0,
     boundsLongRate: LONG_RATE,
     crossingMap: Float64Array.from(CROSSING_KNOTS),
+    crossingFresh: 0.5,
   };
 }
