@@ -158,7 +158,7 @@ function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Pr
     options.coverage,
     declaredLimits(site.signals.map((signal) => signal.limits)),
   );
-  const parts = { ...partsOf(candidate.sections, candidate.settled), calibration, ...responseOf(found) };
+  const parts = { ...partsOf(candidate.sections, candidate.settled), calibration };
   return { choice, bundle: composeBundle(parts), parts, float: withCalibration(candidate.float, calibration) };
 }
 
