@@ -11,6 +11,7 @@ import {
   encodeBundle,
   type JudgeTable,
   quantiseTensor,
+  type ResponseTensors,
   schemaHash,
 } from '@stillwell/protocol';
 import { modelFromBundle, runProbe } from '@stillwell/runtime/filter';
@@ -31,6 +32,8 @@ export interface Composition {
   /** Of the model's kind. */
   readonly sections: KindSections;
   readonly calibration: Calibration;
+  /** What plans of inputs bring; absent: nothing. */
+  readonly response?: ResponseTensors | undefined;
   readonly judge: JudgeTable;
   /** Tick after the last one learned from. */
   readonly learnedToTick: number;
@@ -94,6 +97,7 @@ function bundleWithoutProbe(parts: Composition): Bundle {
     horizon,
     channels: channelsOf(parts),
     ...sections,
+    ...(parts.response === undefined ? {} : { response: parts.response }),
     seasonal: {
       periodTicks: season.periodTicks,
       table: quantiseTensor(season.means, signalCount, season.bins, 'i8'),
@@ -146,7 +150,15 @@ function provenanceOf(parts: Composition, series: Series): Bundle['provenance'] 
     ticks: series.ticks,
     previous: input.previous ? bundleDigest(input.previous) : null,
     seed: options.seed,
-    options: JSON.stringify({ learnShare, calibrateShare, maxBytes, coverage, useAll, ...settled, ...excludedFacts(series) }),
+    options: JSON.stringify({
+      learnShare,
+      calibrateShare,
+      maxBytes,
+      coverage,
+      useAll,
+      ...settled,
+      ...excludedFacts(series),
+    }),
     versions: { trainer: TRAINER_VERSION },
   };
 }

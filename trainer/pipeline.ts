@@ -9,15 +9,18 @@ import type { FitInput, FitOptions } from './fit-options.ts';
 import type { Series } from './history/series.ts';
 import { bankName, featureCount } from './identify/bank.ts';
 import { type Prepared, prepareHistory } from './identify/prepare.ts';
+import { responseRoom } from './identify/response.ts';
 import { type Taught, teach } from './identify/teach.ts';
 import { calibrate } from './judge/calibrate.ts';
 import { declaredLimits } from './judge/crossings.ts';
 import { judge, type Verdicts, verdictSteps } from './judge/gate.ts';
 import { type Hindcast, hindcast } from './judge/hindcast.ts';
+import { type PlanWorth, planWorth } from './judge/plan-worth.ts';
 import { type Reliance, reliance } from './judge/reliance.ts';
 import { meanOf } from './judge/scores.ts';
 import { type KindSections, withCalibration } from './kinds/candidate.ts';
 import { chooseKind, type KindChoice, type Tried } from './kinds/choose-kind.ts';
+import { learnPlans, type Plans, plannedInputs } from './plans.ts';
 import { type Audit, checkAtRest, replayError } from './quantise/audit.ts';
 import { openCalibration, type Surroundings } from './quantise/float-model.ts';
 import { checkOptions, type Split, splitHistory } from './requirements.ts';
@@ -62,6 +65,8 @@ export interface FitResult {
   readonly chosen: Chosen;
   /** What losing each channel costs; null where there is too little judged time, or too many channels. */
   readonly reliance: Reliance | null;
+  /** What plans of inputs are worth on the judged part; null where there are none, or they change nothing. */
+  readonly planWorth: PlanWorth | null;
   readonly warnings: readonly string[];
   /** Wall time of the steps in ms, for the terminal; not in the document. */
   readonly timings: Readonly<Record<string, number>>;
@@ -96,10 +101,17 @@ export async function fit(input: FitInput, options: FitOptions): Promise<FitResu
   const cast = hindcast(modelFromBundle(small.bundle), input.series, { ...split.judged, learn: split.learn }, units);
   const verdicts = judge(cast);
   const audit = auditRounding(small, cast, input.series, split);
+  clock.lap('finding what plans are worth');
+  const worth = planWorth(
+    modelFromBundle(small.bundle),
+    input.series,
+    indices(split.judged, input.series),
+    small.plans.planned,
+  );
   clock.lap('finding what the forecasts rest on');
   const rest = reliance(modelFromBundle(small.bundle), input.series, indices(split.judged, input.series));
   clock.lap('writing the candidate');
-  const parts = options.useAll ? learnFromAll(input.series, small) : small.parts;
+  const parts = options.useAll ? learnFromAll(input.series, prepared, small) : small.parts;
   const document = encodeBundle(composeBundle({ ...parts, judge: judgeTable(cast, verdicts, options.override) }));
   const bundle = decodeBundle(document);
   return Object.freeze({
@@ -112,7 +124,8 @@ export async function fit(input: FitInput, options: FitOptions): Promise<FitResu
     verdicts,
     chosen: chosenOf(small.choice, prepared, taught),
     reliance: rest,
-    warnings: [...prepared.warnings, ...taught.warnings],
+    planWorth: worth,
+    warnings: [...prepared.warnings, ...taught.warnings, ...small.plans.warnings],
     timings: clock.laps(),
   });
 }
@@ -122,6 +135,7 @@ interface Small {
   readonly choice: KindChoice;
   readonly bundle: Bundle;
   readonly parts: Composition;
+  readonly plans: Plans;
   /** The same model without rounding, with the same calibration. */
   readonly float: Model;
 }
@@ -144,12 +158,15 @@ function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Pr
     learnedToTick: split.learn.toTick,
     settled: settledOf(split, settled),
   });
-  const limit = options.maxBytes - SIGNED_BYTES;
+  const planned = plannedInputs(input.site);
+  const room = responseRoom(around.signalCount, planned.length, around.horizon);
+  const limit = options.maxBytes - SIGNED_BYTES - room;
   const bytesLeft = (sections: KindSections): number =>
     limit - documentBytes(partsOf(sections, { room: ' '.repeat(SETTLED_ROOM) }));
   const { series, site } = input;
   const choice = chooseKind({ series, site, options, split, prepared, taught, around, bytesLeft });
   const { candidate } = choice;
+  const plans = learnPlans(candidate, prepared, split.calibrate.toTick - series.firstTick, planned);
   const span = indices(split.calibrate, series);
   const calibration = calibrate(
     candidate.rounded,
@@ -158,8 +175,9 @@ function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Pr
     options.coverage,
     declaredLimits(site.signals.map((signal) => signal.limits)),
   );
-  const parts = { ...partsOf(candidate.sections, candidate.settled), calibration };
-  return { choice, bundle: composeBundle(parts), parts, float: withCalibration(candidate.float, calibration) };
+  const parts = { ...partsOf(candidate.sections, candidate.settled), calibration, response: plans.response?.tensors };
+  const bundle = composeBundle(parts);
+  return { choice, bundle, parts, plans, float: withCalibration(candidate.float, calibration) };
 }
 
 function auditRounding(small: Small, cast: Hindcast, series: Series, split: Split): Audit {
@@ -173,9 +191,11 @@ function auditRounding(small: Small, cast: Hindcast, series: Series, split: Spli
 }
 
 /** Learns once more from every tick, at the size and penalties already judged; bounds stay as calibrated. */
-function learnFromAll(series: Series, { choice, parts }: Small): Composition {
-  const { sections } = choice.candidate.again(series.ticks);
-  return { ...parts, sections, learnedToTick: series.firstTick + series.ticks };
+function learnFromAll(series: Series, prepared: Prepared, { choice, parts, plans }: Small): Composition {
+  const again = choice.candidate.again(series.ticks);
+  const { response } = learnPlans(again, prepared, series.ticks, plans.response === null ? [] : plans.planned);
+  const learnedToTick = series.firstTick + series.ticks;
+  return { ...parts, sections: again.sections, response: response?.tensors, learnedToTick };
 }
 
 /** Goes into the provenance: what `hindcast` needs to know of the split, and what was chosen. */

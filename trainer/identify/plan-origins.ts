@@ -59,7 +59,7 @@ export function gatherPlanOrigins(
   const { signalCount: ny, horizon: H } = model;
   const np = planned.length;
   const steps = spread(H, STEPS);
-  const looks = spread(H, Math.max(2, Math.min(MOST_LOOKS, Math.floor(ALL_LOOKS / ny))));
+  const looks = looksAt(H, ny);
   const products = ny * steps.length * (np * filterCount) ** 2;
   const most = Math.max(64, Math.min(MOST_ORIGINS, MOST_FUTURES / (np * H), MOST_PRODUCTS / products));
   const indices = usableOrigins(series, span, H, most);
@@ -116,6 +116,20 @@ export function spread(horizon: number, count: number): number[] {
   const steps = new Set<number>([1, horizon]);
   for (let k = 1; k < count - 1; k++) steps.add(Math.round(horizon ** (k / (count - 1))));
   return [...steps].sort((a, b) => a - b);
+}
+
+/**
+ * Steps at which the paths of so many signals are looked at: none where two a signal would already be too many.
+ *
+ * shapes  result ascending
+ * units   steps
+ * throws  nothing
+ * source  own choice
+ * cost    trivial
+ */
+export function looksAt(horizon: number, signalCount: number): number[] {
+  const each = Math.min(MOST_LOOKS, Math.floor(ALL_LOOKS / signalCount));
+  return each < 2 ? [] : spread(horizon, each);
 }
 
 /** Evenly thinned origins whose whole future lies in the span and in time that may teach. */

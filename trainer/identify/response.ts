@@ -11,7 +11,7 @@ import { findDelays } from './dead-time.ts';
 import { type Expectation, learnExpectation } from './expectation.ts';
 import { cutFolds, type PlanFolds } from './plan-folds.ts';
 import { learnGains } from './plan-gains.ts';
-import { gatherPlanOrigins, type PlanOrigins } from './plan-origins.ts';
+import { gatherPlanOrigins, looksAt, type PlanOrigins } from './plan-origins.ts';
 import { surprisesOf } from './plan-surprise.ts';
 import { geometricMean } from './sure-gain.ts';
 
@@ -33,6 +33,8 @@ const FASTEST = 1.5;
 /** Curves of an expectation at most, and bytes that all of them may take. */
 const MOST_CURVES = 8;
 const CURVE_BYTES = 3072;
+/** States of any kind at most. */
+const MOST_STATES = 128;
 /** An input that departs from what is expected at fewer origins than this teaches nothing. */
 const LEAST_MOVING = 20;
 
@@ -64,8 +66,9 @@ export function responseRoom(signalCount: number, planned: number, horizon: numb
   if (planned === 0) return 0;
   const filters = responseDecays(horizon).length + 2;
   const curves = curvesFor(planned, horizon);
-  // State and looks are at most 160 numbers together; names, scales and lists of whole numbers are rounded up.
-  const readout = planned * curves * (2 * 160 + 4);
+  // Names, scales and lists of whole numbers are rounded up.
+  const seen = MOST_STATES + signalCount * looksAt(horizon, signalCount).length;
+  const readout = planned * curves * (2 * seen + 4);
   const basis = planned * curves * (horizon + 4);
   return (
     400 + 9 * filters + signalCount * planned * (2 * filters + 3) + 4 * signalCount + readout + basis + 9 * planned
