@@ -6,20 +6,26 @@
  * to beat than any single one.
  */
 import { mkdtempSync, rmSync, writeFileSync } from 'node:fs';
-import { tmpdir } from 'node:os';
+import { availableParallelism, tmpdir } from 'node:os';
 import { join } from 'node:path';
 import { parseSite, type Site } from '@stillwell/protocol';
 import { createState, forecastPath, update } from '@stillwell/runtime/filter';
-import { FIT_DEFAULTS, fit, loadHistory } from '@stillwell/trainer';
+import { FIT_DEFAULTS, fit as fitHistory, loadHistory } from '@stillwell/trainer';
+import { errorCells, geometricMean, learnScales, meanOf } from './accuracy-errors.ts';
 import { DATA_SETS, type DataCase, readSet } from './datasets.ts';
 import type { BenchOptions, Row } from './harness.ts';
 import { isWanted, row } from './harness.ts';
 import { layOut, type PeerForecast, type PeerTask, peerLabel, runPeer } from './peers.ts';
 
-const PEERS_AT_ONCE = 2;
+const PEERS_AT_ONCE = Math.min(2, availableParallelism());
+
+/** A task that keeps all of its case. */
+interface OpenTask extends PeerTask {
+  readonly data: DataCase;
+}
 
 /** A peer's mean squared error, and by signal and step. */
-interface Scored {
+interface PeerError {
   readonly name: string;
   readonly mse: number;
   readonly cells: Float64Array;
@@ -45,7 +51,7 @@ export async function* openRows(options: BenchOptions): AsyncIterable<Row> {
   if (bySet.size === 0) return;
   yield row({
     suite: 'accuracy',
-    case: `open data, geometric mean of ${bySet.size} sets over the best peer`,
+    case: `open data, geometric mean of ${bySet.size} of ${DATA_SETS.length} sets over the best peer`,
     unit: 'mse ratio',
     ours: geometricMean([...bySet.values()].map(geometricMean)),
     better: 'lower',
@@ -65,31 +71,30 @@ async function caseRow(data: DataCase, options: BenchOptions): Promise<Row | nul
       options.note(`${data.name}: no model of ours, left out of the mean: ${(error as Error).message}`);
       return null;
     }
-    const best = errors.reduce<Scored | null>(
+    const best = errors.reduce<PeerError | null>(
       (least, one) => (least === null || one.mse < least.mse ? one : least),
       null,
     );
-    const cells = errorCells(task, ours);
+    const cells = errorCells(data, task.origins, ours, learnScales(data, task.learnTicks));
     const mse = meanOf(cells);
     if (best !== null) noteSteps(data, cells, best, options);
-    return {
-      ...row({
-        suite: 'accuracy',
-        case: `${data.name}, ${task.origins.length} origins, mse of steps 1..${data.horizon}`,
-        unit: 'sd²',
-        ours: mse,
-        peer: best?.mse ?? null,
-        peerName: best === null ? null : peerLabel(best.name),
-        better: 'lower',
-        bar: best?.mse ?? null,
-      }),
-    };
+    return row({
+      suite: 'accuracy',
+      case: `${data.name}, ${task.origins.length} origins, mse of steps 1..${data.horizon}`,
+      unit: 'sd²',
+      ours: mse,
+      peer: best?.mse ?? null,
+      peerName: best === null ? null : peerLabel(best.name),
+      better: 'lower',
+      bar: 1,
+      barOnRatio: true,
+    });
   } finally {
     rmSync(folder, { recursive: true, force: true });
   }
 }
 
-function taskOf(data: DataCase, folder: string): PeerTask {
+function taskOf(data: DataCase, folder: string): OpenTask {
   const ticks = data.values[0]!.length;
   const learnTicks = Math.round(FIT_DEFAULTS.learnShare * ticks);
   const fitTicks = learnTicks + Math.round(FIT_DEFAULTS.calibrateShare * ticks);
@@ -102,9 +107,10 @@ function taskOf(data: DataCase, folder: string): PeerTask {
   return task;
 }
 
-async function peerErrors(task: PeerTask, options: BenchOptions): Promise<Scored[]> {
+async function peerErrors(task: OpenTask, options: BenchOptions): Promise<PeerError[]> {
+  const scales = learnScales(task.data, task.learnTicks);
   const waiting = [...task.data.peers];
-  const found: Scored[] = [];
+  const found: PeerError[] = [];
   const work = async (): Promise<void> => {
     for (let name = waiting.shift(); name !== undefined; name = waiting.shift()) {
       const begun = performance.now();
@@ -112,7 +118,7 @@ async function peerErrors(task: PeerTask, options: BenchOptions): Promise<Scored
       const seconds = ((performance.now() - begun) / 1000).toFixed(0);
       if ('failure' in result) options.note(`${task.data.name}: ${peerLabel(name)} left out: ${result.failure}`);
       else {
-        const cells = errorCells(task, result.ahead);
+        const cells = errorCells(task.data, task.origins, result.ahead, scales);
         const mse = meanOf(cells);
         found.push({ name, mse, cells });
         options.note(`${task.data.name}: ${peerLabel(name)} ${mse.toPrecision(4)}, ${seconds} s`);
@@ -124,7 +130,7 @@ async function peerErrors(task: PeerTask, options: BenchOptions): Promise<Scored
 }
 
 /** Where along the horizon the error comes from. */
-function noteSteps(data: DataCase, ours: Float64Array, best: Scored, options: BenchOptions): void {
+function noteSteps(data: DataCase, ours: Float64Array, best: PeerError, options: BenchOptions): void {
   const { horizon } = data;
   const steps = [...new Set([1, Math.ceil(horizon / 4), Math.ceil(horizon / 2), horizon])];
   const at = (cells: Float64Array, i: number, h: number): string => cells[i * horizon + h - 1]!.toPrecision(3);
@@ -134,38 +140,8 @@ function noteSteps(data: DataCase, ours: Float64Array, best: Scored, options: Be
   });
 }
 
-function meanOf(cells: Float64Array): number {
-  return cells.reduce((sum, value) => sum + value, 0) / cells.length;
-}
-
-/** (signals × horizon) */
-export function errorCells(
-  { data, learnTicks, origins }: Pick<PeerTask, 'data' | 'learnTicks' | 'origins'>,
-  ahead: Float64Array,
-): Float64Array {
-  const { horizon } = data;
-  const width = data.signals.length * horizon;
-  const cells = new Float64Array(width);
-  for (let i = 0; i < data.signals.length; i++) {
-    const y = data.values[i]!;
-    const scale = deviation(y.subarray(0, learnTicks));
-    for (let h = 1; h <= horizon; h++) {
-      let sum = 0;
-      let count = 0;
-      origins.forEach((origin, n) => {
-        const miss = (ahead[n * width + i * horizon + h - 1]! - y[origin + h]!) / scale;
-        if (Number.isNaN(miss)) return;
-        sum += miss * miss;
-        count++;
-      });
-      cells[i * horizon + h - 1] = sum / count;
-    }
-  }
-  return cells;
-}
-
 /** Through the public door, as a person would: a file, a site, the defaults; then the gateway's filter over the whole record. */
-async function ourForecast({ data, origins, folder }: PeerTask): Promise<Float64Array> {
+async function ourForecast({ data, origins, folder }: OpenTask): Promise<Float64Array> {
   const file = join(folder, 'history.csv');
   const names = [...data.signals, ...data.inputs];
   const lines = Array.from({ length: data.values[0]!.length }, (_, t) => {
@@ -175,7 +151,7 @@ async function ourForecast({ data, origins, folder }: PeerTask): Promise<Float64
   writeFileSync(file, `time,${names.join(',')}\n${lines.join('\n')}\n`);
   const site = siteOf(data);
   const { series, survey, lattices } = await loadHistory([file], site, { zone: 'UTC' });
-  const { model, document } = await fit({ series, site, survey, lattices }, FIT_DEFAULTS);
+  const { model, document } = await fitHistory({ series, site, survey, lattices }, FIT_DEFAULTS);
   if (document.length > FIT_DEFAULTS.maxBytes) throw new Error(`bundle of ${document.length} bytes`);
   const state = createState(model);
   const width = data.signals.length * data.horizon;
@@ -206,14 +182,4 @@ function siteOf(data: DataCase): Site {
     ...(data.inputs.length > 0 ? ['inputs:', ...data.inputs.flatMap(channel)] : []),
   ];
   return parseSite(`${text.join('\n')}\n`, 'bench site');
-}
-
-function deviation(y: Float64Array): number {
-  const seen = y.filter((value) => !Number.isNaN(value));
-  const mean = seen.reduce((sum, value) => sum + value, 0) / seen.length;
-  return Math.sqrt(seen.reduce((sum, value) => sum + (value - mean) ** 2, 0) / seen.length);
-}
-
-function geometricMean(ratios: readonly number[]): number {
-  return Math.exp(ratios.reduce((sum, ratio) => sum + Math.log(ratio), 0) / ratios.length);
 }

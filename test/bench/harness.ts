@@ -23,7 +23,10 @@ export interface BenchOptions {
   readonly note: (line: string) => void;
 }
 
-/** One figure. `ratio` is ours/peer of the same run; `holds` whether ours is on the right side of `bar`. */
+/**
+ * One figure. `ratio` is ours/peer of the same run; `holds` whether ours is on the right side of `bar`, or the ratio, where the
+ * peer is what is to be beaten.
+ */
 export interface Row {
   readonly suite: SuiteName;
   readonly case: string;
@@ -47,7 +50,7 @@ export function isWanted({ only }: BenchOptions, name: string): boolean {
   return only === null || name.toLowerCase().includes(only.toLowerCase());
 }
 
-/** Fills in ratio and holds. The bar is on `ours`. */
+/** Fills in ratio and holds. The bar is on `ours`; `barOnRatio` puts it on the ratio, or on nothing where there is no peer. */
 export function row(given: {
   suite: SuiteName;
   case: string;
@@ -57,10 +60,13 @@ export function row(given: {
   peer?: number | null;
   peerName?: string | null;
   bar?: number | null;
+  barOnRatio?: boolean;
 }): Row {
   const peer = given.peer ?? null;
   const bar = given.bar ?? null;
-  const holds = bar === null ? null : given.better === 'lower' ? given.ours <= bar : given.ours >= bar;
+  const ratio = peer === null ? null : given.ours / peer;
+  const judged = given.barOnRatio === true ? ratio : given.ours;
+  const holds = bar === null || judged === null ? null : given.better === 'lower' ? judged <= bar : judged >= bar;
   return {
     suite: given.suite,
     case: given.case,
@@ -68,7 +74,7 @@ export function row(given: {
     ours: given.ours,
     peer,
     peerName: given.peerName ?? null,
-    ratio: peer === null ? null : given.ours / peer,
+    ratio,
     better: given.better,
     bar,
     holds,

@@ -24,7 +24,8 @@ export interface KnownPlant {
   readonly optimum: (from: number) => number;
 }
 
-const HORIZON = 24;
+/** Steps forecast. */
+export const HORIZON = 24;
 const STEP = 1e-6;
 /** Decay, noise of the process, noise of the reading. */
 const PROCESSES = [
@@ -99,12 +100,17 @@ function exactError([a, q, r]: readonly [number, number, number], y: Float64Arra
 
 /** Box and Muller (1958) on a 32-bit shift-register sequence (Marsaglia, 2003). */
 function normals(seed: number): () => number {
+  const uniform = uniforms(seed);
+  return () => Math.sqrt(-2 * Math.log(1 - uniform())) * Math.cos(2 * Math.PI * uniform());
+}
+
+/** Uniform numbers in [0, 1). */
+export function uniforms(seed: number): () => number {
   let word = seed | 0 || 1;
-  const uniform = (): number => {
+  return () => {
     word ^= word << 13;
     word ^= word >>> 17;
     word ^= word << 5;
     return (word >>> 0) / 2 ** 32;
   };
-  return () => Math.sqrt(-2 * Math.log(1 - uniform())) * Math.cos(2 * Math.PI * uniform());
 }

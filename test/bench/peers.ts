@@ -16,7 +16,7 @@ import type { DataCase } from './datasets.ts';
 
 /** Where forecasts start and end: ticks from 0, the parts of a fit with its defaults. */
 export interface PeerTask {
-  readonly data: DataCase;
+  readonly data: Pick<DataCase, 'signals' | 'inputs' | 'values' | 'horizon' | 'periods'>;
   readonly learnTicks: number;
   readonly fitTicks: number;
   readonly origins: readonly number[];

@@ -1,0 +1,87 @@
+/** What is learned beside a known optimum: the excess over the exact filter falls as the history grows. */
+import { mkdtempSync, rmSync } from 'node:fs';
+import { tmpdir } from 'node:os';
+import { join } from 'node:path';
+import { FIT_DEFAULTS, fit as fitHistory } from '@stillwell/trainer';
+import { errorCells, meanOf } from './accuracy-errors.ts';
+import type { BenchOptions, Row } from './harness.ts';
+import { isWanted, row } from './harness.ts';
+import { HORIZON, type KnownPlant, knownPlant } from './known-plant.ts';
+import { layOut, peerLabel, runPeer } from './peers.ts';
+
+const SEEDS = [5, 6, 7, 8];
+const SIZES = [
+  [4000, 0.03],
+  [16_000, 0.01],
+] as const;
+const PEERS = ['autoregression', 'n4sid'] as const;
+
+/** A row a size: mean over seeds, beside the better peer's. */
+export async function* knownRows(options: BenchOptions): AsyncIterable<Row> {
+  if (!isWanted(options, 'known plant')) return;
+  for (const [ticks, bar] of SIZES) {
+    const plants = SEEDS.map((seed) => knownPlant(ticks, seed));
+    const excesses: number[] = [];
+    for (const plant of plants) {
+      const result = await fitHistory(plant.input, FIT_DEFAULTS);
+      const optimum = plant.optimum(result.judged.fromTick - plant.input.series.firstTick);
+      excesses.push(meanOf(result.hindcast.mse) / optimum - 1);
+    }
+    const peer = await bestPeer(plants, options);
+    yield row({
+      suite: 'accuracy',
+      case: `known plant, ${ticks} ticks, excess over the exact filter`,
+      unit: 'share',
+      ours: meanOf(excesses),
+      peer: peer?.excess ?? null,
+      peerName: peer?.label ?? null,
+      better: 'lower',
+      bar,
+    });
+  }
+}
+
+async function bestPeer(
+  plants: readonly KnownPlant[],
+  options: BenchOptions,
+): Promise<{ label: string; excess: number } | null> {
+  let best: { label: string; excess: number } | null = null;
+  for (const name of PEERS) {
+    const excesses: number[] = [];
+    for (const plant of plants) {
+      const found = await peerExcess(name, plant);
+      if (typeof found === 'string') options.note(`known plant: ${peerLabel(name)} left out: ${found}`);
+      else excesses.push(found);
+      if (typeof found === 'string') break;
+    }
+    if (excesses.length < plants.length) continue;
+    const excess = meanOf(excesses);
+    options.note(`known plant, ${plants[0]!.input.series.ticks} ticks: ${peerLabel(name)} ${excess.toPrecision(3)}`);
+    if (best === null || excess < best.excess) best = { label: peerLabel(name), excess };
+  }
+  return best;
+}
+
+async function peerExcess(name: string, { input, optimum }: KnownPlant): Promise<number | string> {
+  const { ticks, names, values } = input.series;
+  const learnTicks = Math.round(FIT_DEFAULTS.learnShare * ticks);
+  const fitTicks = learnTicks + Math.round(FIT_DEFAULTS.calibrateShare * ticks);
+  const data = { signals: names, inputs: [], values, horizon: HORIZON, periods: [] };
+  const origins = Array.from({ length: ticks - HORIZON - fitTicks + 1 }, (_, n) => fitTicks - 1 + n);
+  const folder = mkdtempSync(join(tmpdir(), 'stillwell-bench-'));
+  try {
+    const task = { data, learnTicks, fitTicks, origins, folder };
+    layOut(task);
+    const result = await runPeer(name, task);
+    if ('failure' in result) return result.failure;
+    const cells = errorCells(
+      data,
+      origins,
+      result.ahead,
+      names.map(() => 1),
+    );
+    return meanOf(cells) / optimum(fitTicks) - 1;
+  } finally {
+    rmSync(folder, { recursive: true, force: true });
+  }
+}
