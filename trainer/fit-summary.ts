@@ -1,6 +1,7 @@
 /** What a fit came to, in a few lines for a terminal. */
 import { skillScore } from './judge/scores.ts';
 import type { FitResult } from './pipeline.ts';
+import { planWorthText } from './plans.ts';
 import { bytesText, textTable } from './text-table.ts';
 
 /** A table of skill by signal, and what stands around it. */
@@ -31,6 +32,7 @@ export function fitSummary(result: FitResult): string {
     '',
     ...verdicts.signals.map((verdict) => `  ${verdict.sentence}`),
     '',
+    ...(result.planWorth === null ? [] : [planWorthText(result.planWorth)]),
     verdicts.sentence,
     `Bundle ${bytesText(result.document.length)}: ${chosen.kind} kind, ${chosen.name}; ` +
       `rounding cost ${rounding} of the squared error.`,

@@ -48,5 +48,6 @@ export function planWorthText(worth: PlanWorth | null): string {
   return [
     `Under plans of ${worth.inputs.join(', ')}, ${worth.origins} origins (standardised squared error; then its share of that without a plan):`,
     textTable(head, rows, [1, 2, 3]),
+    '',
   ].join('\n');
 }

@@ -12,9 +12,11 @@ import { layOnTicks } from '../history/ticks.ts';
 import { verdictSteps } from '../judge/gate.ts';
 import { type Hindcast, hindcast } from '../judge/hindcast.ts';
 import { hindcastJson } from '../judge/hindcast-json.ts';
+import { planWorth, planWorthJson } from '../judge/plan-worth.ts';
 import { meanOf, skillScore } from '../judge/scores.ts';
 import { learnedSpans } from '../learned-spans.ts';
 import { several } from '../option-values.ts';
+import { plannedInputs, planWorthText } from '../plans.ts';
 import { createProgress } from '../progress.ts';
 import { readSite } from '../site-file.ts';
 import type { TickSpan } from '../span.ts';
@@ -86,6 +88,8 @@ async function run(options: HindcastOptions): Promise<void> {
   refuseUnread(series, span, options.history);
   const units = bundle.channels.map((channel) => channel.unit);
   const cast = hindcast(model, series, { ...span, learn: learned.learn }, units);
+  const judged = { fromTick: span.fromTick - series.firstTick, toTick: span.toTick - series.firstTick };
+  const worth = planWorth(model, series, judged, plannedInputs(site));
   const seenShare = Math.max(0, Math.min(1, (learned.seenTo - span.fromTick) / (span.toTick - span.fromTick)));
   const head = {
     bundle: Buffer.from(digest).toString('hex'),
@@ -95,8 +99,8 @@ async function run(options: HindcastOptions): Promise<void> {
   };
   process.stdout.write(
     options.json
-      ? `${JSON.stringify({ ...head, ...hindcastJson(cast) }, null, 2)}\n`
-      : `${tableText(cast)}\n${seenText(seenShare)}${notesText(series)}\n${ADVISORY}\n`,
+      ? `${JSON.stringify({ ...head, ...hindcastJson(cast), ...planWorthJson(worth) }, null, 2)}\n`
+      : `${tableText(cast)}\n${planWorthText(worth)}${seenText(seenShare)}${notesText(series)}\n${ADVISORY}\n`,
   );
 }
 

@@ -10,9 +10,6 @@ import { type PlanTrial, plannerOf } from './plan-trial.ts';
 import { replayPaths } from './replay.ts';
 import { meanOf, Scores } from './scores.ts';
 
-/** The trials, in the order in which they are told. */
-export const PLAN_TRIALS = ['none', 'perfect', 'wrong'] as const satisfies readonly PlanTrial[];
-
 /**
  * shapes  mse of each trial (ny × H), entry i·H + h - 1; mean (ny) over the steps
  * units   standardised²
@@ -93,4 +90,26 @@ function scorePath(model: Model, series: Series, at: number, median: Float64Arra
       scores.add(i * H + h - 1, (median[i * H + h - 1] - clipped) / scale[i]);
     }
   }
+}
+
+/**
+ * The same for other programs; empty where there is nothing to say.
+ *
+ * shapes  `under_plans.signals` in the signals' order
+ * units   standardised²
+ * throws  nothing
+ * source  none
+ * cost    trivial
+ */
+export function planWorthJson(worth: PlanWorth | null): Record<string, unknown> {
+  if (worth === null) return {};
+  const { none, perfect, wrong } = worth.trials;
+  const figure = (value: number): number | null => (Number.isFinite(value) ? value : null);
+  const signals = worth.signals.map((signal, i) => ({
+    signal,
+    mse_standardised_no_plan: figure(none.mean[i]),
+    mse_standardised_what_came: figure(perfect.mean[i]),
+    mse_standardised_wrong_plan: figure(wrong.mean[i]),
+  }));
+  return { under_plans: { inputs: worth.inputs, origins: worth.origins, signals } };
 }
