@@ -16,6 +16,9 @@ const COLUMNS = ['HUFL', 'HULL', 'MUFL', 'MULL', 'LUFL', 'LULL', 'OT'];
 /** Head of an envelope and one signature. */
 const SEAL_BYTES = 128;
 const NOMINAL = 0.9;
+/** Most states and most error of a dense recursion. */
+const DENSE = { horizon: 24, order: 42, mse: 0.3 } as const;
+type FitInput = Parameters<typeof fitHistory>[0];
 
 /** All rows on ETTh1, or a line that says they are left out. */
 export async function* splitRows(options: BenchOptions): AsyncIterable<Row> {
@@ -25,16 +28,54 @@ export async function* splitRows(options: BenchOptions): AsyncIterable<Row> {
     return;
   }
   if (isWanted(options, 'ETTh1 H=24')) yield* measured(file, 24, { 24: 0.294 });
+  if (isWanted(options, 'ETTh1 dense')) yield* dense(file, options);
   if (isWanted(options, 'ETTh1 H=96')) yield* measured(file, 96, { 1: 0.106, 24: 0.289, 48: 0.321, 96: 0.358 });
+}
+
+async function load(file: string, horizon: number): Promise<FitInput> {
+  const site = siteOf(horizon);
+  const untilMs = FIRST_MS + SPLIT_ROWS * HOUR_MS;
+  const { series, survey, lattices } = await loadHistory([file], site, { zone: 'UTC', untilMs });
+  return { series, site, survey, lattices };
+}
+
+/** The smallest machine: a recursion whose whole memory is its state. */
+async function* dense(file: string, options: BenchOptions): AsyncIterable<Row> {
+  const input = await load(file, DENSE.horizon);
+  let result: FitResult;
+  try {
+    result = await fitHistory(input, { ...FIT_DEFAULTS, kind: 'dense' });
+  } catch (error) {
+    options.note(`ETTh1 dense: no model of that kind: ${(error as Error).message}`);
+    return;
+  }
+  const name = `ETTh1 dense H=${DENSE.horizon}`;
+  yield row({
+    suite: 'accuracy',
+    case: `${name}, mse of steps 1..${DENSE.horizon}`,
+    unit: 'sd²',
+    ours: meanUpTo(result, DENSE.horizon, null),
+    peer: meanUpTo(result, DENSE.horizon, 'window ridge'),
+    peerName: 'window ridge',
+    better: 'lower',
+    bar: DENSE.mse,
+  });
+  yield row({
+    suite: 'accuracy',
+    case: `${name}, states`,
+    unit: 'count',
+    ours: result.model.order,
+    better: 'lower',
+    bar: DENSE.order,
+  });
 }
 
 async function* measured(file: string, horizon: number, bars: Readonly<Record<number, number>>): AsyncIterable<Row> {
   const name = `ETTh1 H=${horizon}`;
-  const site = siteOf(horizon);
-  const untilMs = FIRST_MS + SPLIT_ROWS * HOUR_MS;
   const startMs = performance.now();
-  const { series, survey, lattices } = await loadHistory([file], site, { zone: 'UTC', untilMs });
-  const result = await fitHistory({ series, site, survey, lattices }, FIT_DEFAULTS);
+  const input = await load(file, horizon);
+  const { series } = input;
+  const result = await fitHistory(input, FIT_DEFAULTS);
   const seconds = (performance.now() - startMs) / 1000;
   for (const [step, bar] of Object.entries(bars)) {
     yield row({
