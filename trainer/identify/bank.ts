@@ -12,6 +12,8 @@ export interface Bank {
   readonly resonators: readonly (readonly [number, number])[];
   /** Ticks, ascending. */
   readonly lags: readonly number[];
+  /** Whether each channel's distance from its mean is one more feature, between resonators and lags. */
+  readonly hasLevel?: boolean;
 }
 
 /** Time constants of the resonators, in periods: one day, three days, a week where the period is a day. */
@@ -58,7 +60,7 @@ export function designBank(periodTicks: number, horizon: number, learnTicks: num
       }
     }
   }
-  return { decays, resonators, lags: lagsOf(periodTicks, longest) };
+  return { decays, resonators, lags: lagsOf(periodTicks, longest), hasLevel: true };
 }
 
 /** Recent lags, and those around the period: the same time a period ago, and its neighbours. */
@@ -75,7 +77,7 @@ function resonator(tau: number, periodTicks: number, m: number): readonly [numbe
 }
 
 /**
- * Features a channel: one a mean, two a resonator, one a lag.
+ * Features a channel: one a mean, two a resonator, one for the level, one a lag.
  *
  * shapes  none
  * units   a count
@@ -84,7 +86,7 @@ function resonator(tau: number, periodTicks: number, m: number): readonly [numbe
  * cost    trivial
  */
 export function featureCount(bank: Bank): number {
-  return bank.decays.length + 2 * bank.resonators.length + bank.lags.length;
+  return bank.decays.length + 2 * bank.resonators.length + (bank.hasLevel === true ? 1 : 0) + bank.lags.length;
 }
 
 /**
@@ -108,6 +110,7 @@ export function settlingTicks(bank: Bank): number {
 export function bankName(bank: Bank): string {
   const parts = [`${bank.decays.length} means`];
   if (bank.resonators.length > 0) parts.push(`${bank.resonators.length} resonators`);
+  if (bank.hasLevel === true) parts.push('the level');
   if (bank.lags.length > 0) parts.push(`${bank.lags.length} lags`);
   return parts.join(', ');
 }

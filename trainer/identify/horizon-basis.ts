@@ -116,6 +116,21 @@ export function curveCoefficients(
   return out;
 }
 
+/**
+ * Coefficients on given curves of every column of a map over the horizon, as `curveCoefficients` finds them.
+ *
+ * shapes  map (rows × steps), curves (steps × r); result (rows × r)
+ * units   standardised
+ * throws  TrainError 'fit' if the curves are linearly dependent
+ * source  weighted least squares over the horizon
+ * cost    O(rows steps r)
+ */
+export function onCurves(map: Float64Array, curves: Float64Array, steps: number, count: number): Float64Array {
+  const layout = { channelCount: 1, signalCount: 1, featureCount: 1, steps };
+  const rows = map.length / steps;
+  return transpose(curveCoefficients(transpose(map, rows, steps), curves, rows, layout, count), count, rows);
+}
+
 function symmetrised(a: Float64Array, n: number): Float64Array {
   const out = a.slice();
   for (let i = 0; i < n; i++) for (let j = 0; j < n; j++) out[i * n + j] = 0.5 * (a[i * n + j] + a[j * n + i]);

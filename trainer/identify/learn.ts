@@ -5,11 +5,13 @@
 import type { Learned } from '../quantise/quantise.ts';
 import { type Bank, designBank, featureCount, settlingTicks } from './bank.ts';
 import { type Partition, partition, usableBlocks } from './blocks.ts';
-import { findDirections } from './bottleneck.ts';
+import { findDirections, stateMoments } from './bottleneck.ts';
 import { type Choice, choose } from './choose.ts';
 import type { Filled } from './fill.ts';
+import { findCurves, fullReadout } from './horizon-basis.ts';
 import { aboutMeans, addMoments, pickMoments } from './moment-sets.ts';
 import { type Block, gatherMoments, type Moments } from './moments.ts';
+import { splitOwn } from './own-part.ts';
 import { type Layout, twoStageMap } from './ridge.ts';
 
 /** Where and what to learn. Lengths in ticks from the start of the completed history. */
@@ -92,9 +94,14 @@ function layoutOf(input: LearnInput, bank: Bank): Layout {
 }
 
 function mapAndDirections(moments: Moments, layout: Layout, choice: Choice): Learned {
-  const map = twoStageMap(aboutMeans(moments), layout, choice.ownPenalty, choice.crossPenalty);
+  const map = twoStageMap(aboutMeans(moments), layout, choice.plan);
   const covariance = steadyCovariance(moments, layout);
-  return { covariance, map, layout, bottleneck: findDirections(covariance, map, layout, MOST_DIRECTIONS) };
+  const bottleneck = findDirections(covariance, map, layout, MOST_DIRECTIONS);
+  const order = bottleneck.carried.length;
+  const state = stateMoments(bottleneck.directions, order, covariance, map, layout);
+  const curves = findCurves(fullReadout(state, order, layout), state.covariance, order, layout);
+  const apart = splitOwn(covariance, map, layout, bottleneck, MOST_DIRECTIONS);
+  return { covariance, map, layout, bottleneck, curves, apart };
 }
 
 /**

@@ -8,7 +8,7 @@
  * channels, and equal to them to rounding. Lags are no recursions of their own; their moments are joined after.
  */
 import { type Bank, featureCount } from './bank.ts';
-import { joinPoles, productsOfChanges, shiftBack } from './cross-steps.ts';
+import { dotShifted, joinPoles, productsOfChanges, shiftBack } from './cross-steps.ts';
 import { type Rings, ringsOf, withLags } from './lag-moments.ts';
 import { advancePoles, flattenPoles, type Poles } from './poles.ts';
 import { featureProducts } from './stein.ts';
@@ -64,7 +64,11 @@ export function gatherMoments(input: MomentInput, blocks: readonly Block[]): Mom
   const rings = ringsOf(values, bank.lags);
   const poles = flattenPoles(bank);
   const changes = values.map(difference);
-  const phi = new Float64Array(values.length * featureCount({ ...bank, lags: [] }));
+  const perChannel = featureCount({ ...bank, lags: [] });
+  const phi = new Float64Array(values.length * perChannel);
+  if (poles.level >= 0) {
+    for (let c = 0; c < values.length; c++) phi[c * perChannel + poles.feature[poles.level]] = -values[c][0];
+  }
   let at = 1;
   return blocks.map((block) => {
     for (; at < block.fromIndex; at++) advancePoles(poles, phi, changes, at);
@@ -122,10 +126,10 @@ function closeBlock(
   const simultaneous = lagged.subarray(0, nc * nc);
   const recursive = {
     origins: block.toIndex - block.fromIndex,
-    features: featureProducts(poles, nc, before, after, cross, simultaneous),
+    features: featureProducts(poles, nc, before, after, cross, simultaneous, productsOfLevels(input, poles, block)),
     future: summedAhead(stepwise, p, signalCount, horizon),
     energy: futureEnergy(input, block),
-    featureSums: summedFeatures(poles, changes, block, before, after),
+    featureSums: summedFeatures(poles, input, changes, block, before, after),
     futureSums: summedFuture(input, block),
   };
   if (rings.lags.length === 0) return recursive;
@@ -157,9 +161,22 @@ function summedAhead(stepwise: Float64Array, p: number, signalCount: number, hor
   return out;
 }
 
+/** (nc × nc) Σ z_i(t) z_j(t), on and below the diagonal; zeros where the bank has no level. */
+function productsOfLevels({ values }: MomentInput, poles: Poles, block: Block): Float64Array {
+  const out = new Float64Array(values.length * values.length);
+  if (poles.level < 0) return out;
+  for (let i = 0; i < values.length; i++) {
+    for (let j = 0; j <= i; j++) {
+      out[i * values.length + j] = dotShifted(values[i], values[j], block.fromIndex, block.toIndex, 0);
+    }
+  }
+  return out;
+}
+
 /** Σ φ(t): φ(t) = a φ(t-1) + drive Δ(t) summed, so (1 - a) Σ φ = a (before - after) + drive Σ Δ. */
 function summedFeatures(
   poles: Poles,
+  { values }: MomentInput,
   changes: readonly Float64Array[],
   block: Block,
   before: Float64Array,
@@ -172,6 +189,10 @@ function summedFeatures(
     for (let t = block.fromIndex; t < block.toIndex; t++) moved += change[t];
     for (let m = 0; m < poles.count; m++) {
       const f = c * perChannel + poles.feature[m];
+      if (m === poles.level) {
+        for (let t = block.fromIndex; t < block.toIndex; t++) out[f] -= values[c][t];
+        continue;
+      }
       const [aRe, aIm] = [poles.poleRe[m], poles.poleIm[m]];
       const xRe = before[f] - after[f];
       const xIm = poles.isComplex[m] === 1 ? before[f + 1] - after[f + 1] : 0;

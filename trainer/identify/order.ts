@@ -4,19 +4,11 @@
  * are judged on readings the map was not learned from.
  */
 
-import { type Factors, floatFactors, type Learned, mapOf } from '../quantise/quantise.ts';
-import { stateMoments } from './bottleneck.ts';
-import { trialSteps } from './choose.ts';
-import { findCurves, fullReadout } from './horizon-basis.ts';
+import { type Factors, floatFactors, type Learned, mapOf, type Size } from '../quantise/quantise.ts';
 import { pickMoments } from './moment-sets.ts';
 import type { Moments } from './moments.ts';
 import { mapError } from './ridge.ts';
-
-/** A size of the small model. */
-export interface Size {
-  readonly order: number;
-  readonly basisCount: number;
-}
+import { trialSteps } from './step-groups.ts';
 
 /** Shares of the byte limit tried, from small to the whole. */
 const SHARES = [0.15, 0.3, 0.5, 0.75, 1] as const;
@@ -41,9 +33,10 @@ const CLEAR_GAIN = 0.005;
  */
 export function sizeBytes(size: Size, learned: Learned): number {
   const { channelCount, featureCount, signalCount, steps } = learned.layout;
-  const { order: d, basisCount: r } = size;
+  const { order: d, basisCount: r, hasOwn } = size;
   const p = channelCount * featureCount;
-  return d * (p + 4) + signalCount * r * (d + 4) + steps * (2 * r + 4) + p + 4 * channelCount;
+  const own = hasOwn ? signalCount * r * ((1 + channelCount - signalCount) * featureCount + 4) : 0;
+  return d * (p + 4) + signalCount * r * (d + 4) + own + steps * (2 * r + 4) + p + 4 * channelCount;
 }
 
 /**
@@ -57,60 +50,76 @@ export function sizeBytes(size: Size, learned: Learned): number {
  */
 export function chooseSize(learned: Learned, judge: Moments, tensorBytes: number): Size {
   const { layout } = learned;
-  const steps = trialSteps(layout.steps);
+  const { steps } = trialSteps(layout.steps);
   const all = Array.from({ length: layout.featureCount }, (_, f) => f);
   const picked = pickMoments(judge, layout, all, steps);
   const trial = { ...layout, steps: steps.length };
-  const energies = energiesOf(learned);
-  const sizes = SHARES.flatMap((share) =>
-    frontier(learned, energies, share * tensorBytes, share === 1 ? FINALISTS : 1),
+  const families = [false, true].map((hasOwn) => energiesOf(learned, hasOwn));
+  const sizes = families.flatMap((energies) =>
+    SHARES.flatMap((share) => frontier(learned, energies, share, tensorBytes)),
   );
-  if (sizes.length === 0) return { order: 1, basisCount: 1 };
-  const errors = sizes.map((size) => {
-    const factors = atSteps(floatFactors(learned, size.order, size.basisCount), steps);
-    return mapError(picked, trial, mapOf(factors, trial)).reduce((sum, value) => sum + value, 0);
+  if (sizes.length === 0) return { order: 1, basisCount: 1, hasOwn: false };
+  const judged = sizes.map((one): Judged => {
+    const factors = atSteps(floatFactors(learned, one.size), steps);
+    const error = mapError(picked, trial, mapOf(factors, trial)).reduce((sum, value) => sum + value, 0);
+    return { ...one, error, bytes: sizeBytes(one.size, learned) };
   });
-  const best = Math.min(...errors);
-  const finalists = errors.slice(-FINALISTS);
-  const largest = errors.length - finalists.length + finalists.indexOf(Math.min(...finalists));
-  const total = sumFrom(energies.directions, 0);
-  const good = sizes.findIndex((size, at) => {
-    if (at >= errors.length - finalists.length) return at === largest;
-    const isSmallLoss = lostEnergy(energies, size) < lostEnergy(energies, sizes[largest]) + LOST_SHARE * total;
-    const isBetter = errors[at] < errors[largest] * (1 - CLEAR_GAIN);
-    return errors[at] <= best * (1 + TIE) && (isSmallLoss || isBetter);
+  const full = judged.filter(({ isFull }) => isFull);
+  const largest = leastError(full.length > 0 ? full : judged);
+  const least = leastError(judged).error;
+  const total = sumFrom(energiesOf(learned, false).directions, 0);
+  const smaller = judged.filter(({ error, lost, bytes }) => {
+    const isSmallLoss = lost < largest.lost + LOST_SHARE * total;
+    const isBetter = error < largest.error * (1 - CLEAR_GAIN);
+    return bytes < largest.bytes && error <= least * (1 + TIE) && (isSmallLoss || isBetter);
   });
-  return sizes[good];
+  return smaller.reduce((best, one) => (one.bytes < best.bytes ? one : best), largest).size;
 }
 
-/** Energy of the weighted forecast that each direction and each curve carries. */
+/** A size on the frontier. */
+interface Sized {
+  readonly size: Size;
+  /** Of the weighted forecast's energy. */
+  readonly lost: number;
+  /** Whether it fills the bytes. */
+  readonly isFull: boolean;
+}
+
+interface Judged extends Sized {
+  readonly error: number;
+  readonly bytes: number;
+}
+
+function leastError(sizes: readonly Judged[]): Judged {
+  return sizes.reduce((best, one) => (one.error < best.error ? one : best));
+}
+
+/** Energy of the weighted forecast that each direction and each curve carries, without or with an own part. */
 interface Energies {
+  readonly hasOwn: boolean;
   readonly directions: Float64Array;
   readonly curves: Float64Array;
 }
 
-function energiesOf(learned: Learned): Energies {
-  const { bottleneck, covariance, map, layout } = learned;
-  const order = bottleneck.carried.length;
-  const moments = stateMoments(bottleneck.directions, order, covariance, map, layout);
-  const { energy } = findCurves(fullReadout(moments, order, layout), moments.covariance, order, layout);
-  return { directions: bottleneck.carried.map((sd) => sd * sd), curves: energy };
+function energiesOf(learned: Learned, hasOwn: boolean): Energies {
+  const { bottleneck, apart, curves } = learned;
+  // Where signals say nothing of each other the own part gives all, and one state is kept to show what moves most.
+  const carried = hasOwn ? (apart.isJoint ? apart.bottleneck.carried : Float64Array.of(0)) : bottleneck.carried;
+  return { hasOwn, directions: carried.map((sd) => sd * sd), curves: curves.energy };
 }
 
-/** The sizes within the bytes that lose least of the full map's weighted forecast, at most `count`, the best first. */
-function frontier(learned: Learned, energies: Energies, bytes: number, count: number): Size[] {
-  const sizes: Size[] = [];
+/** The sizes within a share of the bytes that lose least of the full map's weighted forecast, the best first. */
+function frontier(learned: Learned, energies: Energies, share: number, tensorBytes: number): Sized[] {
+  const sizes: Sized[] = [];
+  const { hasOwn, directions, curves } = energies;
   for (const basisCount of BASES) {
     if (basisCount > learned.layout.steps) break;
-    let order = energies.directions.length;
-    while (order > 0 && sizeBytes({ order, basisCount }, learned) > bytes) order--;
-    if (order > 0) sizes.push({ order, basisCount });
+    let order = directions.length;
+    while (order > 0 && sizeBytes({ order, basisCount, hasOwn }, learned) > share * tensorBytes) order--;
+    const lost = sumFrom(directions, order) + sumFrom(curves, basisCount);
+    if (order > 0) sizes.push({ size: { order, basisCount, hasOwn }, lost, isFull: share === 1 });
   }
-  return sizes.sort((a, b) => lostEnergy(energies, a) - lostEnergy(energies, b)).slice(0, count);
-}
-
-function lostEnergy(energies: Energies, size: Size): number {
-  return sumFrom(energies.directions, size.order) + sumFrom(energies.curves, size.basisCount);
+  return sizes.sort((a, b) => a.lost - b.lost).slice(0, share === 1 ? FINALISTS : 1);
 }
 
 function sumFrom(values: Float64Array, from: number): number {

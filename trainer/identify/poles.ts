@@ -4,9 +4,11 @@
  */
 import type { Bank } from './bank.ts';
 
-/** The bank's poles and drives as flat arrays, one entry a mode (mean or resonator). */
+/** The bank's poles and drives as flat arrays, one entry a mode (mean, resonator or level). */
 export interface Poles {
   readonly count: number;
+  /** Mode of the level; -1: none. It forgets nothing: its feature at the first reading is the reading's negative. */
+  readonly level: number;
   /** Index of the mode's first feature within its channel. */
   readonly feature: Int32Array;
   readonly isComplex: Uint8Array;
@@ -18,9 +20,9 @@ export interface Poles {
 }
 
 /**
- * Flattens a bank's means and resonators.
+ * Flattens a bank's means and resonators, and its level as a mean that never moves: pole 1, drive -1.
  *
- * shapes  every array (means + resonators)
+ * shapes  every array (means + resonators + level)
  * units   poles per tick
  * throws  nothing
  * source  steady state g = (1 - |a|)/(1 - a) as in the filter's bank
@@ -28,9 +30,10 @@ export interface Poles {
  */
 export function flattenPoles(bank: Bank): Poles {
   const all: (readonly [number, number])[] = [...bank.decays.map((a) => [a, 0] as const), ...bank.resonators];
-  const count = all.length;
+  const count = all.length + (bank.hasLevel === true ? 1 : 0);
   const poles: Poles = {
     count,
+    level: bank.hasLevel === true ? all.length : -1,
     feature: new Int32Array(count),
     isComplex: new Uint8Array(count),
     poleRe: new Float64Array(count),
@@ -52,6 +55,11 @@ export function flattenPoles(bank: Bank): Poles {
     poles.driveRe[m] = -(re * steadyRe - im * steadyIm);
     poles.driveIm[m] = -(re * steadyIm + im * steadyRe);
   });
+  if (poles.level >= 0) {
+    poles.feature[poles.level] = feature;
+    poles.poleRe[poles.level] = 1;
+    poles.driveRe[poles.level] = -1;
+  }
   return poles;
 }
 

@@ -1,12 +1,13 @@
 /**
  * The map from features to the future by ridge regression in two stages, from second moments alone: each signal from its
  * own past and the known inputs, then what that left from the past of all channels under a heavier penalty. The penalty
- * is relative to each feature's own variance, so units and scalings do not matter. Stage two is shared work for all
- * signals; a signal may be left out of it.
+ * is relative to each feature's own variance, so units and scalings do not matter. Either stage may be left out, and its
+ * penalty and features differ, by signal and group of steps.
  */
 import { cholesky, solveCholesky } from '../linalg/cholesky.ts';
 import { multiply } from '../linalg/products.ts';
 import type { Moments } from './moments.ts';
+import type { StepGroup } from './step-groups.ts';
 
 /** Sizes of a set of moments. */
 export interface Layout {
@@ -71,103 +72,161 @@ export function ridgeOwn(
   return map;
 }
 
-/**
- * Own-stage map of all signals, laid out over all features.
- *
- * shapes  penalties (ny), null: zeros, the signal keeps its last value; result (p × ny·steps)
- * units   standardised change per feature
- * throws  as `ridgeOwn`
- * source  as `ridgeOwn`
- * cost    ny times `ridgeOwn`
- */
-export function ownMap(moments: Moments, layout: Layout, penalties: readonly (number | null)[]): Float64Array {
-  const width = layout.signalCount * layout.steps;
-  const out = new Float64Array(layout.channelCount * layout.featureCount * width);
-  for (let i = 0; i < layout.signalCount; i++) {
-    const penalty = penalties[i];
-    if (penalty === null) continue;
-    const chosen = ownFeatures(layout, i);
-    const map = ridgeOwn(moments, layout, i, chosen, penalty);
-    chosen.forEach((f, a) => {
-      out.set(map.subarray(a * layout.steps, (a + 1) * layout.steps), f * width + i * layout.steps);
-    });
-  }
-  return out;
+/** How one signal's map for a group of steps is learned: penalty, and the features of a channel that take part. */
+export interface Cell {
+  readonly penalty: number;
+  /** Ascending indices within a channel. */
+  readonly kept: readonly number[];
+}
+
+/** Cells of one stage, by signal and group of steps; null: the stage leaves these steps alone. */
+export type Plan = readonly (readonly (Cell | null)[])[];
+
+/** Both stages, and the groups their cells stand for. */
+export interface TwoStagePlan {
+  readonly groups: readonly StepGroup[];
+  readonly own: Plan;
+  readonly cross: Plan;
 }
 
 /**
- * The equations of the cross stage: what the own stage left, on the features of all channels.
+ * Own-stage map of all signals, laid out over all features.
  *
- * shapes  own (p × ny·steps); right likewise; gram(penalty) (p × p)
+ * shapes  plan (ny × groups), null: zeros, the signal keeps its last value; result (p × ny·steps)
+ * units   standardised change per feature
+ * throws  as `ridgeOwn`
+ * source  as `ridgeOwn`
+ * cost    one `ridgeOwn` a signal and distinct cell
+ */
+export function ownMap(moments: Moments, layout: Layout, groups: readonly StepGroup[], plan: Plan): Float64Array {
+  const width = layout.signalCount * layout.steps;
+  const out = new Float64Array(layout.channelCount * layout.featureCount * width);
+  plan.forEach((cells, i) => {
+    const present = new Map<string, Cell>();
+    for (const cell of cells) if (cell !== null) present.set(cellKey(cell), cell);
+    for (const [key, { penalty, kept }] of present) {
+      const isKept = new Set(kept);
+      const chosen = ownFeatures(layout, i).filter((f) => isKept.has(f % layout.featureCount));
+      const map = ridgeOwn(moments, layout, i, chosen, penalty);
+      for (const [g, { from, to }] of groups.entries()) {
+        const cell = cells[g];
+        if (cell === null || cellKey(cell) !== key) continue;
+        chosen.forEach((f, a) => {
+          const row = map.subarray(a * layout.steps + from - 1, a * layout.steps + to);
+          out.set(row, f * width + i * layout.steps + from - 1);
+        });
+      }
+    }
+  });
+  return out;
+}
+
+function cellKey({ penalty, kept }: Cell): string {
+  return `${penalty} ${kept.join(' ')}`;
+}
+
+/**
+ * What the own stage left: right-hand sides of the cross stage.
+ *
+ * shapes  own (p × ny·steps); result likewise
  * units   standardised; sums
  * throws  nothing
  * source  as `ridgeOwn`, on the residual: its cross moments are R - S own
  * cost    O(p² ny steps)
  */
-export function crossSystem(
-  moments: Moments,
-  layout: Layout,
-  own: Float64Array,
-): { readonly right: Float64Array; readonly gram: (penalty: number) => Float64Array } {
+export function leftByOwn(moments: Moments, layout: Layout, own: Float64Array): Float64Array {
   const p = layout.channelCount * layout.featureCount;
   const right = multiply(moments.features, own, p, p, layout.signalCount * layout.steps);
   for (let k = 0; k < right.length; k++) right[k] = moments.future[k] - right[k];
-  const gram = (penalty: number): Float64Array => {
-    const out = moments.features.slice();
-    addPenalty(out, p, penalty);
-    return out;
-  };
-  return { right, gram };
+  return right;
+}
+
+/** Features of all channels that a cell keeps, and the equations of the cross stage on them. */
+export interface CrossSystem {
+  /** (n) ascending indices into p */
+  readonly chosen: Int32Array;
+  /** (n × n) */
+  readonly gram: Float64Array;
 }
 
 /**
- * The whole map: own stage, and the cross stage for the signals that have a penalty for it.
+ * The equations of the cross stage on some features of every channel, before their penalty.
  *
- * shapes  ownPenalty, crossPenalty (ny); result (p × ny·steps)
+ * shapes  kept within a channel, ascending
+ * units   sums
+ * throws  nothing
+ * source  a principal submatrix
+ * cost    O(n²)
+ */
+export function crossSystem(moments: Moments, layout: Layout, kept: readonly number[]): CrossSystem {
+  const p = layout.channelCount * layout.featureCount;
+  const chosen = Int32Array.from({ length: layout.channelCount * kept.length }, (_, a) => {
+    return Math.floor(a / kept.length) * layout.featureCount + kept[a % kept.length];
+  });
+  const n = chosen.length;
+  const gram = new Float64Array(n * n);
+  for (let a = 0; a < n; a++) {
+    const row = chosen[a] * p;
+    for (let b = 0; b < n; b++) gram[a * n + b] = moments.features[row + chosen[b]];
+  }
+  return { chosen, gram };
+}
+
+/**
+ * The cross stage for some columns.
+ *
+ * shapes  right (n × columns), overwritten with the map's rows of the chosen features
  * units   standardised change per feature
  * throws  as `ridgeOwn`
  * source  as `ridgeOwn`
- * cost    O(p³/6 + 2 p² steps) a distinct cross penalty and signal
+ * cost    O(n³/6 + n² columns)
  */
-export function twoStageMap(
-  moments: Moments,
-  layout: Layout,
-  ownPenalty: readonly (number | null)[],
-  crossPenalty: readonly (number | null)[],
-): Float64Array {
-  const { steps, signalCount } = layout;
-  const p = layout.channelCount * layout.featureCount;
-  const width = signalCount * steps;
-  const map = ownMap(moments, layout, ownPenalty);
-  const system = crossSystem(moments, layout, map);
-  for (const penalty of new Set(crossPenalty)) {
-    if (penalty === null) continue;
-    const signals = crossPenalty.flatMap((own, i) => (own === penalty ? [i] : []));
-    const right = new Float64Array(p * signals.length * steps);
-    eachEntry(p, signals, steps, width, (packed, full) => {
-      right[packed] = system.right[full];
+export function solveCross({ chosen, gram }: CrossSystem, penalty: number, right: Float64Array, columns: number): void {
+  const n = chosen.length;
+  const raised = gram.slice();
+  addPenalty(raised, n, penalty);
+  solveCholesky(cholesky(raised, n), n, right, columns);
+}
+
+/**
+ * The whole map: own stage, and the cross stage where the plan has one.
+ *
+ * shapes  result (p × ny·steps)
+ * units   standardised change per feature
+ * throws  as `ridgeOwn`
+ * source  as `ridgeOwn`
+ * cost    O(p³/6 + p² columns) a distinct cell of the cross stage
+ */
+export function twoStageMap(moments: Moments, layout: Layout, plan: TwoStagePlan): Float64Array {
+  const map = ownMap(moments, layout, plan.groups, plan.own);
+  const present = new Map<string, Cell>();
+  for (const cell of plan.cross.flat()) if (cell !== null) present.set(cellKey(cell), cell);
+  if (present.size === 0) return map;
+  const width = layout.signalCount * layout.steps;
+  const left = leftByOwn(moments, layout, map);
+  for (const [key, { penalty, kept }] of present) {
+    const columns = plan.cross.flatMap((cells, i) =>
+      plan.groups.flatMap(({ from, to }, g) => {
+        const cell = cells[g];
+        if (cell === null || cellKey(cell) !== key) return [];
+        return Array.from({ length: to - from + 1 }, (_, k) => i * layout.steps + from - 1 + k);
+      }),
+    );
+    const system = crossSystem(moments, layout, kept);
+    const right = new Float64Array(system.chosen.length * columns.length);
+    system.chosen.forEach((f, a) => {
+      columns.forEach((column, k) => {
+        right[a * columns.length + k] = left[f * width + column];
+      });
     });
-    solveCholesky(cholesky(system.gram(penalty), p), p, right, signals.length * steps);
-    eachEntry(p, signals, steps, width, (packed, full) => {
-      map[full] += right[packed];
+    solveCross(system, penalty, right, columns.length);
+    system.chosen.forEach((f, a) => {
+      columns.forEach((column, k) => {
+        map[f * width + column] += right[a * columns.length + k];
+      });
     });
   }
   return map;
-}
-
-/** Pairs of places of the chosen signals' columns: in a matrix of those alone, and in the full one. */
-function eachEntry(
-  p: number,
-  signals: readonly number[],
-  steps: number,
-  width: number,
-  visit: (packed: number, full: number) => void,
-): void {
-  for (let f = 0; f < p; f++) {
-    signals.forEach((i, k) => {
-      for (let h = 0; h < steps; h++) visit((f * signals.length + k) * steps + h, f * width + i * steps + h);
-    });
-  }
 }
 
 /**

@@ -10,7 +10,7 @@ import type { Poles } from './poles.ts';
  *
  * shapes  before, after (p) features one tick before the block and at its last tick; cross (nc × p), entry i·p + f the
  *         sum of feature f at t-1 times the change of channel i at t; changes (nc × nc) sums of changes times changes;
- *         result (p × p) symmetric
+ *         levels (nc × nc) sums of readings times readings, used where the bank has a level; result (p × p) symmetric
  * units   standardised; sums
  * throws  nothing
  * source  Byrnes, Georgiou & Lindquist (2000), section II, with the two ends of a finite block added
@@ -23,6 +23,7 @@ export function featureProducts(
   after: Float64Array,
   cross: Float64Array,
   changes: Float64Array,
+  levels: Float64Array,
 ): Float64Array {
   const p = before.length;
   const out = new Float64Array(p * p);
@@ -31,7 +32,10 @@ export function featureProducts(
     for (let a = 0; a < poles.count; a++) {
       for (let j = 0; j <= i; j++) {
         const last = j === i ? a : poles.count - 1;
-        for (let b = 0; b <= last; b++) pair.solve(i, a, j, b, out);
+        for (let b = 0; b <= last; b++) {
+          if (a !== poles.level || b !== poles.level) pair.solve(i, a, j, b, out);
+          else write(out, p, pair.place(i, a), pair.place(j, b), levels[i * channels + j]);
+        }
       }
     }
   }
@@ -65,12 +69,17 @@ class PairSolver {
     this.#changes = changes;
   }
 
+  /** Index of the first feature of a channel's mode. */
+  place(channel: number, mode: number): number {
+    return (channel * this.#before.length) / this.#channels + this.#poles.feature[mode];
+  }
+
   /** Writes the products of mode a of channel i with mode b of channel j, on both sides of the diagonal. */
   solve(i: number, a: number, j: number, b: number, out: Float64Array): void {
-    const { feature, isComplex } = this.#poles;
+    const { isComplex } = this.#poles;
     const p = this.#before.length;
-    const f = (i * p) / this.#channels + feature[a];
-    const g = (j * p) / this.#channels + feature[b];
+    const f = this.place(i, a);
+    const g = this.place(j, b);
     this.#sum(i, a, f, j, b, g, 1);
     const plainRe = this.#re;
     const plainIm = this.#im;

@@ -6,10 +6,12 @@ export interface BankSize {
   readonly means: number;
   readonly resonators: number;
   readonly lags: number;
+  /** 1: with the level. */
+  readonly level: number;
 }
 
 /**
- * Sizes of banks without lags worth trying, from small to wide.
+ * Sizes of banks without lags and level worth trying, from small to wide.
  *
  * shapes  none
  * units   counts
@@ -20,11 +22,12 @@ export interface BankSize {
 export function bankSizes(bank: Bank): BankSize[] {
   const means = bank.decays.length;
   const resonators = bank.resonators.length;
+  const plain = { lags: 0, level: 0 };
   const sizes: BankSize[] = [
-    { means: Math.min(4, means), resonators: 0, lags: 0 },
-    { means, resonators: 0, lags: 0 },
-    { means, resonators: Math.ceil(resonators / 3), lags: 0 },
-    { means, resonators, lags: 0 },
+    { means: Math.min(4, means), resonators: 0, ...plain },
+    { means, resonators: 0, ...plain },
+    { means, resonators: Math.ceil(resonators / 3), ...plain },
+    { means, resonators, ...plain },
   ];
   return sizes.filter(
     (size, at) => sizes.findIndex((other) => other.means === size.means && other.resonators === size.resonators) === at,
@@ -37,7 +40,7 @@ export function bankSizes(bank: Bank): BankSize[] {
  * shapes  kept ascending
  * units   none
  * throws  nothing
- * source  order of features: means, resonators, lags
+ * source  order of features: means, resonators, level, lags
  * cost    trivial
  */
 export function subBank(bank: Bank, size: BankSize): { readonly bank: Bank; readonly kept: readonly number[] } {
@@ -45,11 +48,14 @@ export function subBank(bank: Bank, size: BankSize): { readonly bank: Bank; read
     decays: bank.decays.slice(0, size.means),
     resonators: bank.resonators.slice(0, size.resonators),
     lags: bank.lags.slice(0, size.lags),
+    ...(size.level > 0 ? { hasLevel: true } : {}),
   };
-  const firstLag = bank.decays.length + 2 * bank.resonators.length;
+  const levelAt = bank.decays.length + 2 * bank.resonators.length;
+  const firstLag = levelAt + (bank.hasLevel === true ? 1 : 0);
   const kept = [
     ...smaller.decays.keys(),
     ...Array.from({ length: 2 * size.resonators }, (_, f) => bank.decays.length + f),
+    ...(size.level > 0 ? [levelAt] : []),
     ...Array.from(smaller.lags.keys(), (f) => firstLag + f),
   ];
   if (featureCount(smaller) !== kept.length) throw new RangeError('A sub-bank lost count of its features.');

@@ -71,6 +71,23 @@ export function teachAgain(
   return learnAgain({ ...learnInput(prepared), filled }, choice, ticks);
 }
 
+/**
+ * The history that `teachAgain` learns from.
+ *
+ * shapes  (nc) of (ticks of the series)
+ * units   standardised
+ * throws  FilterError if the model does not fit the series
+ * source  as `teach`
+ * cost    one replay where readings are missing
+ */
+export function completedValues(
+  prepared: Prepared,
+  { passing }: Pick<Taught, 'passing'>,
+  ticks: number,
+): readonly Float64Array[] {
+  return passing === null ? prepared.filled.values : refill(prepared, passing, ticks).values;
+}
+
 function missingShare({ filled, around, learnTicks }: Prepared): number {
   let missing = 0;
   for (const read of filled.isRead.slice(0, around.signalCount)) {
@@ -83,7 +100,7 @@ function passingModel(prepared: Prepared, first: LearnOutput): Model {
   const { around, calm, learnTicks, calibrateTicks } = prepared;
   const { learned, choice } = first;
   const order = Math.min(PASS_ORDER, learned.bottleneck.carried.length);
-  const factors = floatFactors(learned, order, Math.min(PASS_BASIS, around.horizon));
+  const factors = floatFactors(learned, { order, basisCount: Math.min(PASS_BASIS, around.horizon), hasOwn: false });
   const surroundings = { ...around, bank: choice.bank, coverage: PASS_COVERAGE, boundsRate: 0.05 };
   const open = floatModel(
     factors,

@@ -3,10 +3,10 @@
  */
 import { TrainError } from '../errors.ts';
 import { bankName } from '../identify/bank.ts';
-import { chooseSize, type Size, sizeBytes } from '../identify/order.ts';
+import { chooseSize, sizeBytes } from '../identify/order.ts';
 import { teachAgain } from '../identify/teach.ts';
 import { floatModel, openCalibration } from '../quantise/float-model.ts';
-import { floatFactors, type Learned, roundedFactors } from '../quantise/quantise.ts';
+import { floatFactors, type Learned, roundedFactors, type Size } from '../quantise/quantise.ts';
 import type { Attempt, Candidate, KindSections } from './candidate.ts';
 
 /** Rounds of trying a smaller size until the document fits. */
@@ -23,13 +23,13 @@ const MOST_ROUNDS = 4;
  */
 export function tryLinear(attempt: Attempt): Candidate {
   const { learned, calibrationMoments } = attempt.taught;
-  const least = { order: 1, basisCount: 1 };
+  const least = { order: 1, basisCount: 1, hasOwn: false };
   const free = attempt.bytesLeft(sectionsOf(attempt, learned, least));
   let tensorBytes = free + sizeBytes(least, learned);
   for (let round = 0; free >= 0 && round < MOST_ROUNDS; round++) {
     const size = chooseSize(learned, calibrationMoments, tensorBytes);
     const left = attempt.bytesLeft(sectionsOf(attempt, learned, size));
-    if (left >= 0) return candidateOf(attempt, learned, size);
+    if (left >= 0) return linearOfSize(attempt, learned, size);
     tensorBytes += left;
   }
   const { maxBytes } = attempt.options;
@@ -41,30 +41,42 @@ export function tryLinear(attempt: Attempt): Candidate {
 }
 
 function sectionsOf({ taught }: Attempt, learned: Learned, size: Size): KindSections {
-  const { decays, resonators, lags } = taught.choice.bank;
-  const { tensors } = roundedFactors(learned, size.order, size.basisCount);
-  return { kind: 'linear', linear: { decays, resonators, lags, ...tensors } };
+  const { decays, resonators, lags, hasLevel } = taught.choice.bank;
+  const level = hasLevel === true ? { level: true as const } : {};
+  const { tensors } = roundedFactors(learned, size);
+  return { kind: 'linear', linear: { decays, resonators, lags, ...level, ...tensors } };
 }
 
-function candidateOf(attempt: Attempt, learned: Learned, size: Size): Candidate {
+/**
+ * The linear candidate of a size.
+ *
+ * shapes  as Candidate
+ * units   standardised
+ * throws  TrainError 'fit' from the solves
+ * source  none
+ * cost    two factorisations
+ */
+export function linearOfSize(attempt: Attempt, learned: Learned, size: Size): Candidate {
   const { around, taught, prepared } = attempt;
-  const { order, basisCount } = size;
+  const { order, basisCount, hasOwn } = size;
   const open = openCalibration(around.scalings.length, around.signalCount * around.horizon);
   return {
     kind: 'linear',
-    name: `${order} states, ${basisCount} curves, bank of ${bankName(taught.choice.bank)}`,
-    float: floatModel(floatFactors(learned, order, basisCount), around, open),
-    rounded: floatModel(roundedFactors(learned, order, basisCount).factors, around, open),
+    name: `${hasOwn ? 'own part and ' : ''}${order} states, ${basisCount} curves, bank of ${bankName(taught.choice.bank)}`,
+    float: floatModel(floatFactors(learned, size), around, open),
+    rounded: floatModel(roundedFactors(learned, size).factors, around, open),
     sections: sectionsOf(attempt, learned, size),
     settled: {
       ownPenalty: [...new Set(taught.choice.ownPenalty)],
       crossPenalty: [...new Set(taught.choice.crossPenalty)],
       order,
       basis: basisCount,
+      own: hasOwn,
     },
     again(ticks) {
       const more = teachAgain(prepared, taught, ticks);
-      return candidateOf(attempt, more, { basisCount, order: Math.min(order, more.bottleneck.carried.length) });
+      const { carried } = (hasOwn ? more.apart : more).bottleneck;
+      return linearOfSize(attempt, more, { ...size, order: Math.min(order, carried.length) });
     },
   };
 }

@@ -2,7 +2,7 @@
  * A model to compute with, from learned factors, before there is a bundle: for calibration, and for the audit.
  */
 import { CROSSING_KNOTS } from '@stillwell/protocol';
-import type { LinearModel } from '@stillwell/runtime/filter';
+import type { CommonModel, LinearModel } from '@stillwell/runtime/filter';
 import { type Bank, featureCount } from '../identify/bank.ts';
 import type { Scaling } from '../identify/scaling.ts';
 import type { Season } from '../identify/season.ts';
@@ -52,25 +52,43 @@ export interface Calibration {
  * cost    copies
  */
 export function floatModel(factors: Factors, around: Surroundings, calibration: Calibration): LinearModel {
-  const { scalings, lattices, bank, season } = around;
-  const perChannel = (pick: (scaling: Scaling) => number): Float64Array => Float64Array.from(scalings, pick);
+  const { bank } = around;
   return {
     kind: 'linear',
-    tickMs: around.tickMs,
-    channelCount: scalings.length,
-    signalCount: around.signalCount,
+    ...commonPart(around, calibration),
     featureCount: featureCount(bank),
     order: factors.order,
     basisCount: factors.basisCount,
-    horizon: around.horizon,
     decays: Float64Array.from(bank.decays),
     resonatorRe: Float64Array.from(bank.resonators, ([re]) => re),
     resonatorIm: Float64Array.from(bank.resonators, ([, im]) => im),
     lags: Int32Array.from(bank.lags),
+    ...(bank.hasLevel === true ? { level: true } : {}),
     featureScale: Float64Array.from(factors.exponents, (exponent) => 2 ** exponent),
     bottleneck: factors.bottleneck,
     readout: factors.readout,
+    ...(factors.hasOwn ? { own: factors.own } : {}),
     horizonBasis: factors.horizonBasis,
+  };
+}
+
+/**
+ * What every kind of model has, from its surroundings; the order is the kind's to say.
+ *
+ * shapes  as CommonModel
+ * units   as CommonModel
+ * throws  nothing
+ * source  none
+ * cost    copies
+ */
+export function commonPart(around: Surroundings, calibration: Calibration): Omit<CommonModel, 'order'> {
+  const { scalings, lattices, season } = around;
+  const perChannel = (pick: (scaling: Scaling) => number): Float64Array => Float64Array.from(scalings, pick);
+  return {
+    tickMs: around.tickMs,
+    channelCount: scalings.length,
+    signalCount: around.signalCount,
+    horizon: around.horizon,
     mean: perChannel((scaling) => scaling.mean),
     scale: perChannel((scaling) => scaling.scale),
     latticeStep: Float64Array.from(lattices, (lattice) => lattice.step),

@@ -1,12 +1,22 @@
 /**
  * From a learned map to the tensors of a bundle. Rounded in the order in which they act, each later factor fitted to the
- * earlier ones as they stand after rounding: the state's rows, then the curves, then the coefficients. Decays and
- * resonators stay float64, since rounding them moves the bank itself; nothing of the recursion is rounded.
+ * earlier ones as they stand after rounding: the state's rows, then the curves, then the coefficients, then the own part,
+ * which takes up what the state leaves. Decays and resonators stay float64, since rounding them moves the bank itself;
+ * nothing of the recursion is rounded.
  */
 import { dequantise, quantiseTensor, type Tensor } from '@stillwell/protocol';
 import { type Bottleneck, stateMoments } from '../identify/bottleneck.ts';
-import { curveCoefficients, findCurves, firstCurves, fullReadout } from '../identify/horizon-basis.ts';
-import type { Layout } from '../identify/ridge.ts';
+import {
+  type Curves,
+  curveCoefficients,
+  findCurves,
+  firstCurves,
+  fullReadout,
+  onCurves,
+} from '../identify/horizon-basis.ts';
+import { type Apart, ownCoefficients } from '../identify/own-part.ts';
+import { type Layout, ownFeatures } from '../identify/ridge.ts';
+import { multiply, transpose } from '../linalg/products.ts';
 import { featureExponents } from './scales.ts';
 
 /** What was learned, before it is made small. */
@@ -17,18 +27,30 @@ export interface Learned {
   readonly map: Float64Array;
   readonly layout: Layout;
   readonly bottleneck: Bottleneck;
+  /** Curves of the whole map over the horizon. */
+  readonly curves: Curves;
+  /** What is left where each signal has an own part. */
+  readonly apart: Apart;
+}
+
+/** A size of the small model. */
+export interface Size {
+  readonly order: number;
+  readonly basisCount: number;
+  /** Whether each signal has an own part beside the state. */
+  readonly hasOwn: boolean;
 }
 
 /** Factors of the small model; `bottleneck` applies to features already multiplied by 2^exponent. */
-export interface Factors {
-  readonly order: number;
-  readonly basisCount: number;
+export interface Factors extends Size {
   /** (nc·F) */
   readonly exponents: Int8Array;
   /** (d × nc·F) */
   readonly bottleneck: Float64Array;
   /** (ny·r × d) */
   readonly readout: Float64Array;
+  /** (ny·r × (1 + nu)·F), empty without an own part */
+  readonly own: Float64Array;
   /** (steps × r) */
   readonly horizonBasis: Float64Array;
 }
@@ -38,6 +60,7 @@ export interface FactorTensors {
   readonly featureExponents: Tensor;
   readonly bottleneck: Tensor;
   readonly readout: Tensor;
+  readonly own?: Tensor;
   readonly horizonBasis: Tensor;
 }
 
@@ -52,54 +75,86 @@ type Round = (values: Float64Array, rows: number, cols: number, type: 'i8' | 'i1
  * source  file head
  * cost    O(order p² + ny steps order p)
  */
-export function floatFactors(learned: Learned, order: number, basisCount: number): Factors {
-  return makeFactors(learned, order, basisCount, (values) => values);
+export function floatFactors(learned: Learned, size: Size): Factors {
+  return makeFactors(learned, size, (values) => values);
 }
 
 /**
  * The small model as the bundle will hold it, and its tensors.
  *
  * shapes  as `floatFactors`
- * units   standardised
+ * units   as `floatFactors`
  * throws  as `floatFactors`; ProtocolError 'tensor' if a factor is not finite
  * source  file head
  * cost    as `floatFactors`
  */
 export function roundedFactors(
   learned: Learned,
-  order: number,
-  basisCount: number,
+  size: Size,
 ): { readonly factors: Factors; readonly tensors: FactorTensors } {
   const round: Round = (values, rows, cols, type) => dequantise(quantiseTensor(values, rows, cols, type));
-  const factors = makeFactors(learned, order, basisCount, round);
+  const factors = makeFactors(learned, size, round);
   const { layout } = learned;
+  const { order, basisCount, hasOwn } = size;
   const p = layout.channelCount * layout.featureCount;
+  const rows = layout.signalCount * basisCount;
   return {
     factors,
     tensors: {
       featureExponents: exponentTensor(factors.exponents, layout),
       bottleneck: quantiseTensor(factors.bottleneck, order, p, 'i8'),
-      readout: quantiseTensor(factors.readout, layout.signalCount * basisCount, order, 'i8'),
+      readout: quantiseTensor(factors.readout, rows, order, 'i8'),
+      ...(hasOwn ? { own: quantiseTensor(factors.own, rows, factors.own.length / rows, 'i8') } : {}),
       horizonBasis: quantiseTensor(factors.horizonBasis, layout.steps, basisCount, 'i16'),
     },
   };
 }
 
-function makeFactors(learned: Learned, order: number, basisCount: number, round: Round): Factors {
-  const { covariance, map, layout } = learned;
+function makeFactors(learned: Learned, size: Size, round: Round): Factors {
+  const { covariance, layout } = learned;
+  const { order, basisCount, hasOwn } = size;
   const p = layout.channelCount * layout.featureCount;
   const exponents = featureExponents(covariance, p);
-  const scaled = learned.bottleneck.directions.slice(0, order * p);
+  const scaled = (hasOwn ? learned.apart : learned).bottleneck.directions.slice(0, order * p);
   for (let at = 0; at < scaled.length; at++) scaled[at] *= 2 ** -exponents[at % p];
   const bottleneck = round(scaled, order, p, 'i8');
   const directions = bottleneck.map((value, at) => value * 2 ** exponents[at % p]);
-  const moments = stateMoments(directions, order, covariance, map, layout);
+  const moments = stateMoments(directions, order, covariance, hasOwn ? learned.apart.rest : learned.map, layout);
   const full = fullReadout(moments, order, layout);
-  const curves = firstCurves(findCurves(full, moments.covariance, order, layout), layout.steps, basisCount);
+  const found = hasOwn ? learned.curves : findCurves(full, moments.covariance, order, layout);
+  const curves = firstCurves(found, layout.steps, basisCount);
   const horizonBasis = round(curves, layout.steps, basisCount, 'i16');
   const coefficients = curveCoefficients(full, horizonBasis, order, layout, basisCount);
   const readout = round(coefficients, layout.signalCount * basisCount, order, 'i8');
-  return { order, basisCount, exponents, bottleneck, readout, horizonBasis };
+  const small = { ...size, exponents, bottleneck, readout, horizonBasis, own: new Float64Array(0) };
+  return hasOwn ? { ...small, own: ownPart(learned, small, directions, round) } : small;
+}
+
+/** (ny·r × (1 + nu)·F) what each signal's own features add to what the state gives, on the curves as they stand. */
+function ownPart(learned: Learned, small: Factors, directions: Float64Array, round: Round): Float64Array {
+  const { covariance, map, layout } = learned;
+  const { order, basisCount: r, readout, horizonBasis, exponents } = small;
+  const { signalCount: ny, steps } = layout;
+  const p = layout.channelCount * layout.featureCount;
+  const byFeature = transpose(directions, order, p);
+  const cols = ownFeatures(layout, 0).length;
+  const out = new Float64Array(ny * r * cols);
+  for (let i = 0; i < ny; i++) {
+    const columns = new Float64Array(p * steps);
+    for (let f = 0; f < p; f++) {
+      columns.set(map.subarray((f * ny + i) * steps, (f * ny + i + 1) * steps), f * steps);
+    }
+    const wanted = onCurves(columns, horizonBasis, steps, r);
+    const rows = readout.subarray(i * r * order, (i + 1) * r * order);
+    const given = multiply(byFeature, transpose(rows, r, order), p, order, r);
+    for (let k = 0; k < wanted.length; k++) wanted[k] -= given[k];
+    const chosen = ownFeatures(layout, i);
+    const own = ownCoefficients(covariance, p, chosen, wanted, r);
+    chosen.forEach((f, a) => {
+      for (let k = 0; k < r; k++) out[(i * r + k) * cols + a] = own[a * r + k] * 2 ** -exponents[f];
+    });
+  }
+  return round(out, ny * r, cols, 'i8');
 }
 
 /** Exponents as they travel: int8 with every scale 1. */
@@ -149,5 +204,20 @@ export function mapOf(factors: Factors, layout: Layout): Float64Array {
       for (let j = 0; j < width; j++) to[j] += weight * perState[k * width + j];
     }
   }
+  if (factors.hasOwn) addOwnMap(factors, layout, out);
   return out;
+}
+
+function addOwnMap({ own, basisCount: r, horizonBasis, exponents }: Factors, layout: Layout, out: Float64Array): void {
+  const { signalCount: ny, steps } = layout;
+  for (let i = 0; i < ny; i++) {
+    const chosen = ownFeatures(layout, i);
+    chosen.forEach((f, a) => {
+      for (let h = 0; h < steps; h++) {
+        let sum = 0;
+        for (let k = 0; k < r; k++) sum += horizonBasis[h * r + k] * own[(i * r + k) * chosen.length + a];
+        out[(f * ny + i) * steps + h] += sum * 2 ** exponents[f];
+      }
+    });
+  }
 }

@@ -50,6 +50,7 @@ function direct(bank: Bank, block: Block): Moments {
         phi[at++] = sr - g[0] * y[t]!;
         phi[at++] = si - g[1] * y[t]!;
       }
+      if (bank.hasLevel === true) phi[at++] = -y[t]!;
       for (const lag of bank.lags) phi[at++] = y[Math.max(0, t - lag)]! - y[t]!;
     });
     for (let i = 0; i < signalCount; i++) {
@@ -80,6 +81,8 @@ function expectAlike(got: Moments, expected: Moments): void {
 describe.each([
   ['means and resonators', recursive],
   ['lags beside them, longer than what lies before a block', { ...recursive, lags: [1, 2, 5, 13] }],
+  ['the level beside them', { ...recursive, hasLevel: true }],
+  ['the level between resonators and lags', { ...recursive, hasLevel: true, lags: [1, 4] }],
   ['lags alone', { decays: [], resonators: [], lags: [1, 3] }],
 ])('gatherMoments, %s', (_, bank) => {
   const blocks = [

@@ -2,7 +2,7 @@
 import { describe, expect, it } from 'vitest';
 import { findDirections } from '../../../trainer/identify/bottleneck.ts';
 import type { Moments } from '../../../trainer/identify/moments.ts';
-import { type Layout, mapError, ownMap, twoStageMap } from '../../../trainer/identify/ridge.ts';
+import { type Cell, type Layout, mapError, ownMap, twoStageMap } from '../../../trainer/identify/ridge.ts';
 import { cholesky, solveCholesky } from '../../../trainer/linalg/cholesky.ts';
 import { multiply, multiplyTransposed } from '../../../trainer/linalg/products.ts';
 import { recurrence } from '../../support/sample-bundle.ts';
@@ -11,6 +11,12 @@ const layout: Layout = { channelCount: 3, signalCount: 2, featureCount: 2, steps
 const p = 6;
 const width = 4;
 const rows = 80;
+const groups = [
+  { from: 1, to: 1 },
+  { from: 2, to: 2 },
+];
+const both = [0, 1];
+const bothSteps = (cell: Cell | null): (Cell | null)[] => [cell, cell];
 const next = recurrence(5);
 const uniform = (): number => next() / 2 ** 31 - 1;
 const x = Float64Array.from({ length: rows * p }, uniform);
@@ -50,7 +56,11 @@ function byRows(columns: readonly number[], target: Float64Array, penalty: numbe
 }
 
 describe('twoStageMap', () => {
-  const map = twoStageMap(moments, layout, [0.1, 0.4], [3, null]);
+  const map = twoStageMap(moments, layout, {
+    groups,
+    own: [bothSteps({ penalty: 0.1, kept: both }), bothSteps({ penalty: 0.4, kept: both })],
+    cross: [bothSteps({ penalty: 3, kept: both }), bothSteps(null)],
+  });
 
   it('is each signal on its own past and the inputs, then what is left on all', () => {
     for (let j = 0; j < width; j++) {
@@ -72,6 +82,48 @@ describe('twoStageMap', () => {
     }
   });
 
+  it('learns each step with its own penalty and features, in both stages', () => {
+    const mixed = twoStageMap(moments, layout, {
+      groups,
+      own: [
+        [
+          { penalty: 0.1, kept: [0] },
+          { penalty: 0.4, kept: both },
+        ],
+        [null, { penalty: 0.2, kept: [1] }],
+      ],
+      cross: [
+        [null, { penalty: 3, kept: [1] }],
+        [{ penalty: 5, kept: [0] }, null],
+      ],
+    });
+    const own: readonly (readonly [readonly number[], number])[] = [
+      [[0, 4], 0.1],
+      [[0, 1, 4, 5], 0.4],
+      [[], 1],
+      [[3, 5], 0.2],
+    ];
+    const cross: readonly (readonly [readonly number[], number] | null)[] = [
+      null,
+      [[1, 3, 5], 3],
+      [[0, 2, 4], 5],
+      null,
+    ];
+    own.forEach(([features, penalty], j) => {
+      const target = Float64Array.from({ length: rows }, (_, t) => y[t * width + j]!);
+      const expected = new Float64Array(p);
+      byRows(features, target, penalty).forEach((weight, a) => {
+        expected[features[a]!] = weight;
+      });
+      const left = target.map((value, t) => value - expected.reduce((sum, w, f) => sum + w * x[t * p + f]!, 0));
+      const [more, heavier] = cross[j] ?? [[], 1];
+      byRows(more, left, heavier).forEach((weight, a) => {
+        expected[more[a]!]! += weight;
+      });
+      for (let f = 0; f < p; f++) expect(mixed[f * width + j]!).toBeCloseTo(expected[f]!, 12);
+    });
+  });
+
   it('has the error that its forecasts make', () => {
     const got = mapError(moments, layout, map);
     const forecast = multiply(x, map, rows, p, width);
@@ -89,7 +141,8 @@ describe('twoStageMap', () => {
       silent.features[p + f] = 0;
     }
     silent.future.fill(0, width, 2 * width);
-    const weights = ownMap(silent, layout, [0.1, 0.1]);
+    const cell = { penalty: 0.1, kept: both };
+    const weights = ownMap(silent, layout, groups, [bothSteps(cell), bothSteps(cell)]);
     expect(Array.from(weights.subarray(width, 2 * width))).toEqual([0, 0, 0, 0]);
     expect(weights.every((weight) => Number.isFinite(weight))).toBe(true);
   });
@@ -100,7 +153,11 @@ describe('findDirections', () => {
     const covariance = moments.features.map((sum) => sum / rows);
     const wide = { ...layout, steps: 6 };
     const stretched = Float64Array.from({ length: p * 12 }, (_, k) => Math.sin(k * k + 1));
-    const narrow = twoStageMap(moments, layout, [0.1, 0.4], [3, 3]);
+    const narrow = twoStageMap(moments, layout, {
+      groups,
+      own: [bothSteps({ penalty: 0.1, kept: both }), bothSteps({ penalty: 0.4, kept: both })],
+      cross: [bothSteps({ penalty: 3, kept: both }), bothSteps({ penalty: 3, kept: both })],
+    });
     for (const [map, shape] of [
       [narrow, layout],
       [stretched, wide],

@@ -1,7 +1,10 @@
 /** Rounding: how far an entry may move, what the exponents do, and that later factors make up for earlier ones. */
 import { describe, expect, it } from 'vitest';
 import { dequantise, type Tensor } from '../../../protocol/index.ts';
-import { findDirections } from '../../../trainer/identify/bottleneck.ts';
+import { findDirections, stateMoments } from '../../../trainer/identify/bottleneck.ts';
+import { findCurves, fullReadout } from '../../../trainer/identify/horizon-basis.ts';
+import { splitOwn } from '../../../trainer/identify/own-part.ts';
+import { ownFeatures } from '../../../trainer/identify/ridge.ts';
 import { floatFactors, type Learned, mapOf, roundedFactors } from '../../../trainer/quantise/quantise.ts';
 import { featureExponents } from '../../../trainer/quantise/scales.ts';
 import { recurrence } from '../../support/sample-bundle.ts';
@@ -24,7 +27,11 @@ function learnedOf(): Learned {
     }
   }
   const map = Float64Array.from({ length: p * width }, (_, at) => uniform() / size[Math.floor(at / width)]!);
-  return { covariance, map, layout, bottleneck: findDirections(covariance, map, layout, p) };
+  const bottleneck = findDirections(covariance, map, layout, p);
+  const order = bottleneck.carried.length;
+  const state = stateMoments(bottleneck.directions, order, covariance, map, layout);
+  const curves = findCurves(fullReadout(state, order, layout), state.covariance, order, layout);
+  return { covariance, map, layout, bottleneck, curves, apart: splitOwn(covariance, map, layout, bottleneck, p) };
 }
 
 const learned = learnedOf();
@@ -61,11 +68,13 @@ describe('featureExponents', () => {
   });
 });
 
+const size = { order: 8, basisCount: 6, hasOwn: false };
+
 describe('roundedFactors', () => {
-  const { factors, tensors } = roundedFactors(learned, 8, 6);
+  const { factors, tensors } = roundedFactors(learned, size);
 
   it('moves the state by at most half a scale in any entry', () => {
-    const exact = floatFactors(learned, 8, 6).bottleneck;
+    const exact = floatFactors(learned, size).bottleneck;
     const got = dequantise(tensors.bottleneck);
     for (let at = 0; at < exact.length; at++) {
       const half = rowScale(tensors.bottleneck, Math.floor(at / p)) / 2;
@@ -82,13 +91,63 @@ describe('roundedFactors', () => {
   });
 
   it('costs little, and without rounding nothing at full size', () => {
-    const whole = mapOf(floatFactors(learned, p, 6), layout);
+    const whole = mapOf(floatFactors(learned, { ...size, order: p }), layout);
     // The state's ridge is 1e-10 of its variance, the covariance's 1e-9.
     expect(difference(learned.map, whole)).toBeLessThan(1e-8);
-    const float = difference(learned.map, mapOf(floatFactors(learned, 8, 6), layout));
+    const float = difference(learned.map, mapOf(floatFactors(learned, size), layout));
     const rounded = difference(learned.map, mapOf(factors, layout));
     expect(rounded).toBeGreaterThan(float);
     // int8 entries are off by 1/254 of the largest in a row, evenly: some 1e-5 of the energy, two factors of it.
     expect(rounded - float).toBeLessThan(2e-4);
+  });
+});
+
+describe('an own part', () => {
+  const own = { order: 2, basisCount: 6, hasOwn: true };
+  const { factors, tensors } = roundedFactors(learned, own);
+
+  it('travels as it was judged', () => {
+    expect(Array.from(dequantise(tensors.own!))).toEqual(Array.from(factors.own));
+    expect([tensors.own!.rows, tensors.own!.cols]).toEqual([12, 5]);
+    expect(roundedFactors(learned, size).tensors.own).toBeUndefined();
+  });
+
+  it('leaves errors that the own features say nothing of', () => {
+    const whole = floatFactors(learned, own);
+    const rest = learned.map.map((value, k) => value - mapOf(whole, layout)[k]!);
+    for (let i = 0; i < 2; i++) {
+      for (const f of ownFeatures(layout, i)) {
+        for (let h = 0; h < 6; h++) {
+          let shared = 0;
+          let size = 0;
+          for (let g = 0; g < p; g++) {
+            const part = learned.covariance[f * p + g]! * rest[g * width + i * 6 + h]!;
+            shared += part;
+            size += Math.abs(part);
+          }
+          // The own features' ridge is 1e-9 of their variance; the curves' likewise.
+          expect(Math.abs(shared)).toBeLessThan(1e-6 * size + 1e-12);
+        }
+      }
+    }
+  });
+
+  it('does better than a state of the same order alone, and rounding costs it little', () => {
+    const alone = difference(learned.map, mapOf(floatFactors(learned, { ...own, hasOwn: false }), layout));
+    const float = difference(learned.map, mapOf(floatFactors(learned, own), layout));
+    expect(float).toBeLessThan(alone);
+    expect(difference(learned.map, mapOf(factors, layout)) - float).toBeLessThan(2e-4);
+  });
+
+  it('gives all where signals say nothing of each other', () => {
+    const map = learned.map.map((value, at) => {
+      const isOwn = Math.floor(at / width / 5) === Math.floor((at % width) / 6);
+      return isOwn ? value : 0;
+    });
+    const apart = splitOwn(learned.covariance, map, layout, learned.bottleneck, p);
+    expect(apart.isJoint).toBe(false);
+    expect(learned.apart.isJoint).toBe(true);
+    const parts = { ...learned, map, apart };
+    expect(difference(map, mapOf(floatFactors(parts, { ...own, order: 1 }), layout))).toBeLessThan(1e-8);
   });
 });

@@ -1,0 +1,42 @@
+/** Sure gains against a published worked example of Student's paired test. */
+import { describe, expect, it } from 'vitest';
+import { gainsSurely, geometric } from '../../../trainer/identify/fold-errors.ts';
+
+const even = (n: number): number[] => new Array(n).fill(1 / n);
+
+describe('gainsSurely', () => {
+  // Student, Biometrika 6 (1908), section IX: hours of sleep gained by ten patients, one drug over another. Mean difference
+  // 1.58 and standard deviation 1.17 (divisor n); his odds that the second is better, 666 to one, quoted from memory.
+  const difference = [1.2, 2.4, 1.3, 1.3, 0, 1, 1.8, 0.8, 4.6, 1.4];
+
+  it("finds Student's own example sure, at one in 200 even with the quantile of eight patients", () => {
+    const errors = difference.map((gain) => Math.exp(-gain));
+    const others = difference.map(() => 1);
+    expect(gainsSurely(errors, others, 0.1, even(10), 0.005)).toBe(true);
+    expect(gainsSurely(others, errors, 0, even(10), 0.1)).toBe(false);
+  });
+
+  it('is as sure as the table says: t = 2.132 at one in twenty and four degrees of freedom', () => {
+    // Gains 1 ± s in pairs, one at the mean: t = 1 / (s √(4/5) / √4).
+    const at = (t: number): number[] => {
+      const s = 1 / (t * Math.sqrt(0.8 / 4));
+      return [1 - s, 1 + s, 1, 1 + s, 1 - s].map((gain) => Math.exp(-gain));
+    };
+    const others = even(5).map(() => 1);
+    expect(gainsSurely(at(2.14), others, 0, even(5), 0.05)).toBe(true);
+    expect(gainsSurely(at(2.12), others, 0, even(5), 0.05)).toBe(false);
+    expect(gainsSurely(at(2.12), others, 0, even(5), 0.1)).toBe(true);
+  });
+
+  it('asks for the share, and a lone fold has only that to go by', () => {
+    expect(gainsSurely([0.97], [1], 0.02, [1])).toBe(true);
+    expect(gainsSurely([0.99], [1], 0.02, [1])).toBe(false);
+  });
+});
+
+describe('geometric', () => {
+  it('weighs', () => {
+    expect(geometric([4, 9], [0.5, 0.5])).toBeCloseTo(6, 12);
+    expect(geometric([2, 8], [0.25, 0.75])).toBeCloseTo(2 ** 2.5, 12);
+  });
+});
