@@ -8,6 +8,7 @@ import { kindOption, reason, several, share, wholeNumber } from '../option-value
 import { FIT_DEFAULTS, type FitOptions, type FitResult, fit } from '../pipeline.ts';
 import { createProgress } from '../progress.ts';
 import { readSite } from '../site-file.ts';
+import { surveyNotes } from '../survey-notes.ts';
 import { timeSpan } from '../time-option.ts';
 
 interface FitCommandOptions {
@@ -73,8 +74,11 @@ async function run(options: FitCommandOptions): Promise<void> {
   );
   label.end();
   await writeCandidate(options.out, site, loaded.survey, result);
+  const notes = surveyNotes(loaded.survey);
   process.stdout.write(
-    options.json ? `${JSON.stringify(candidateFacts(options.out, result), null, 2)}\n` : text(options.out, result),
+    options.json
+      ? `${JSON.stringify({ ...candidateFacts(options.out, result), survey_notes: notes }, null, 2)}\n`
+      : text(options.out, result, notes),
   );
 }
 
@@ -89,6 +93,7 @@ async function load(site: Site, options: FitCommandOptions): Promise<LoadedHisto
   }
 }
 
-function text(folder: string, result: FitResult): string {
-  return `${fitSummary(result)}\nWritten to ${folder}: ${CANDIDATE_FILES}\n\n${ADVISORY}\n`;
+function text(folder: string, result: FitResult, notes: readonly string[]): string {
+  const survey = notes.map((note) => `Survey: ${note}\n`).join('');
+  return `${fitSummary(result)}${survey}\nWritten to ${folder}: ${CANDIDATE_FILES}\n\n${ADVISORY}\n`;
 }

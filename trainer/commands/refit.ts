@@ -10,6 +10,7 @@ import { kindOption, reason, several, share, wholeNumber } from '../option-value
 import { createProgress } from '../progress.ts';
 import type { RefitResult } from '../refit/refit.ts';
 import { readSite } from '../site-file.ts';
+import { surveyNotes } from '../survey-notes.ts';
 import { shortNumber, textTable } from '../text-table.ts';
 import { type TimeSpan, timeSpan } from '../time-option.ts';
 
@@ -112,13 +113,17 @@ function resultJson(folder: string, { fit, comparison, absorbed }: RefitResult):
   const { series, newFromTick } = absorbed;
   return {
     ...candidateFacts(folder, fit),
+    survey_notes: surveyNotes(absorbed.survey),
     ticks: series.ticks,
     new_ticks: series.firstTick + series.ticks - newFromTick,
     comparison,
   };
 }
 
-function text(folder: string, { fit, comparison }: RefitResult): string {
+function text(folder: string, { fit, comparison, absorbed }: RefitResult): string {
+  const survey = surveyNotes(absorbed.survey)
+    .map((note) => `Survey: ${note}\n`)
+    .join('');
   const beside =
     comparison === null
       ? 'No previous bundle given (--previous), so nothing to compare with.'
@@ -135,5 +140,5 @@ function text(folder: string, { fit, comparison }: RefitResult): string {
           ),
           comparison.sentence,
         ].join('\n');
-  return `${fitSummary(fit)}\n${beside}\n\nWritten to ${folder}: ${CANDIDATE_FILES}\n\n${ADVISORY}\n`;
+  return `${fitSummary(fit)}${survey}\n${beside}\n\nWritten to ${folder}: ${CANDIDATE_FILES}\n\n${ADVISORY}\n`;
 }

@@ -1,7 +1,7 @@
 /**
  * How often a signal was read: the usual interval, how much it wavers, and the tick that suits it.
  */
-import { counted, type Finding, lengthOf } from './finding.ts';
+import { counted, type Finding, lengthOf, percent } from './finding.ts';
 import type { ChannelReadings } from './history.ts';
 import { quantiles } from './order-statistics.ts';
 
@@ -84,18 +84,35 @@ export function suggestTick(intervalsMs: readonly number[]): number {
   return STEPS_MS.find((step) => step * WAVER >= slowest) ?? (STEPS_MS.at(-1) as number);
 }
 
-/** Says where the site's tick does not suit a signal, or its clock wavers. */
-export function cadenceFindings(name: string, cadence: Cadence, tickMs: number): Finding[] {
+/** Says that the site's tick suits no signal at all, being finer than any is read; null where one is read as often. */
+export function tooFineTick(cadences: readonly Cadence[], tickMs: number): Finding | null {
+  const intervals = cadences.map(({ intervalMs }) => intervalMs).filter((interval) => interval > 0);
+  const quickest = Math.min(...intervals);
+  if (intervals.length === 0 || !(quickest > tickMs * WAVER)) return null;
+  return {
+    kind: 'cadence',
+    weight: 'serious',
+    signal: null,
+    from: null,
+    to: null,
+    count: Math.round(quickest / tickMs),
+    sentence: `No signal is read more often than every ${lengthOf(quickest)}, but the tick is ${lengthOf(tickMs)}: ${percent(1 - tickMs / quickest)} of the ticks have no reading.`,
+    advice: `Take a tick of ${lengthOf(suggestTick([quickest]))} in the site file, and as many fewer ticks for the horizon.`,
+  };
+}
+
+/** Says where the site's tick does not suit a signal, or its clock wavers; `isTooFine`: that was said of all. */
+export function cadenceFindings(name: string, cadence: Cadence, tickMs: number, isTooFine = false): Finding[] {
   const { intervalMs, jitterMs } = cadence;
   const whole = { kind: 'cadence', signal: name, from: null, to: null } as const;
   const found: Finding[] = [];
-  if (intervalMs > tickMs * WAVER)
+  if (intervalMs > tickMs * WAVER && !isTooFine)
     found.push({
       ...whole,
       weight: 'look',
       count: Math.round(intervalMs / tickMs),
       sentence: `${name} is read every ${lengthOf(intervalMs)}, more slowly than the tick of ${lengthOf(tickMs)}: most ticks have no reading.`,
-      advice: 'Take a longer tick, or keep this signal out.',
+      advice: `Take a tick of ${lengthOf(suggestTick([intervalMs]))} in the site file, or keep this signal out.`,
     });
   const perTick = Math.round(tickMs / intervalMs);
   if (intervalMs > 0 && perTick >= 2)

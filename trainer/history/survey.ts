@@ -5,7 +5,7 @@
 import { basename } from 'node:path';
 import type { Signal, Site } from '@stillwell/protocol';
 import { withoutExcluded } from '../exclusions.ts';
-import { type Cadence, cadenceFindings, cadenceOf, suggestTick } from './cadence.ts';
+import { type Cadence, cadenceFindings, cadenceOf, suggestTick, tooFineTick } from './cadence.ts';
 import { channelsOf } from './channels.ts';
 import { clockChangeFindings } from './clock-changes.ts';
 import { copyFindings } from './copies.ts';
@@ -161,7 +161,9 @@ export function surveyHistory(
       seen[c] as ValuesSeen,
     ),
   );
+  const tooFine = tooFineTick(cadences, site.tickMs);
   const findings = [
+    ...(tooFine === null ? [] : [tooFine]),
     ...clockChangeFindings(history),
     ...orderFindings(history, orders),
     ...gapFindings(series),
@@ -170,7 +172,7 @@ export function surveyHistory(
       ...outsideFindings(signal, history.channels[c] as ChannelReadings),
       ...spikeFindings(series, c),
       ...latticeFindings(signal, history.channels[c] as ChannelReadings, lattices[c] as FoundLattice),
-      ...cadenceFindings(signal.name, cadences[c] as Cadence, site.tickMs),
+      ...cadenceFindings(signal.name, cadences[c] as Cadence, site.tickMs, tooFine !== null),
     ]),
     ...singleFindings(channels, lattices),
     ...copyFindings(

@@ -146,10 +146,18 @@ describe('one fault, one finding', () => {
     });
     expect(only(await surveyOf(clean(), site(['level'])), 'columns').sentence).toContain('"flow"');
     const slow = await surveyOf(clean(), site(['level', 'flow'], { tickMs: 10_000 }));
-    expect(slow.findings.filter(({ kind }) => kind === 'cadence').map(({ signal: name }) => name)).toEqual([
-      'level',
-      'flow',
-    ]);
+    expect(only(slow, 'cadence')).toMatchObject({
+      signal: null,
+      weight: 'serious',
+      sentence:
+        'No signal is read more often than every 1 min, but the tick is 10 s: 83.3 % of the ticks have no reading.',
+      advice: 'Take a tick of 1 min in the site file, and as many fewer ticks for the horizon.',
+    });
+    const one = await surveyOf(changed((_, n) => (n % 5 === 0 ? {} : { flow: '' })));
+    expect(only(one, 'cadence')).toMatchObject({
+      signal: 'flow',
+      advice: 'Take a tick of 5 min in the site file, or keep this signal out.',
+    });
     expect(slow.suggestedTickS).toBe(60);
     const wavering = await surveyOf(
       changed((_, n) => ({ time: new Date(START + n * 60_000 + ((n * n * 7) % 41) * 1000).toISOString() })),
