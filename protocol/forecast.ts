@@ -5,7 +5,7 @@
 import { z } from 'zod';
 import { ProtocolError } from './errors.ts';
 import { formatInstant } from './instant.ts';
-import { MAX_HORIZON } from './limits.ts';
+import { MAX_CHANNELS, MAX_HORIZON } from './limits.ts';
 import { headFields, instantSchema, type MessageHead, nameSchema, readJson, writeHead, writeJson } from './message.ts';
 
 /** Names of limits in messages. */
@@ -23,6 +23,24 @@ export const limitOutlookSchema = z.strictObject({
   time: instantSchema.nullable(),
 });
 
+/** What stands for an input ahead: a plan, what the past says of it, or its last value. */
+export const INPUT_USES = ['planned', 'expected', 'held'] as const;
+/** One of them. */
+export type InputUse = (typeof INPUT_USES)[number];
+
+const difference = z.number().min(0);
+
+/** What a forecast made of one input. */
+export const inputOutlookSchema = z.strictObject({
+  input: nameSchema,
+  unit: z.string().min(1),
+  use: z.enum(INPUT_USES),
+  plan_age_s: z.number().min(0).nullable(),
+  plan_until: instantSchema.nullable(),
+  plan_error: difference.nullable(),
+  usual_error: difference.nullable(),
+});
+
 /** Every field of a forecast message. */
 export const forecastSchema = z.strictObject({
   ...headFields('forecast'),
@@ -36,6 +54,7 @@ export const forecastSchema = z.strictObject({
   upper: path,
   limits: z.array(limitOutlookSchema).max(LIMIT_NAMES.length),
   inputs: z.enum(['none', 'held', 'planned']),
+  inputs_ahead: z.array(inputOutlookSchema).max(MAX_CHANNELS).optional(),
   last_reading_at: instantSchema.nullable(),
 });
 
@@ -53,6 +72,21 @@ export interface LimitOutlook {
   readonly timeMs: number | null;
 }
 
+/** What a forecast made of one input. */
+export interface InputOutlook {
+  readonly input: string;
+  readonly unit: string;
+  readonly use: InputUse;
+  /** Since the ruling plan was made, or came; null without one. */
+  readonly planAgeMs: number | null;
+  /** How far it reaches; null without one. */
+  readonly planUntilMs: number | null;
+  /** Mean size of plan less what came, over the last horizon, in `unit`; null where nothing was planned and came. */
+  readonly planError: number | null;
+  /** The same of what is expected without a plan, when the bundle was learned; null where that is not known. */
+  readonly usualError: number | null;
+}
+
 /** What a forecast message is made of, beside the head. */
 export interface ForecastFacts extends MessageHead {
   readonly signal: string;
@@ -67,10 +101,22 @@ export interface ForecastFacts extends MessageHead {
   readonly lower: ArrayLike<number>;
   readonly upper: ArrayLike<number>;
   readonly limits: readonly LimitOutlook[];
-  /** Whether the site has inputs and, if so, whether their last values were held or a plan was used. */
+  /** Whether the site has inputs and, if so, whether a plan of any was used or the forecast went on from what they did. */
   readonly inputs: 'none' | 'held' | 'planned';
+  /** One an input, in the site's order; left out of the message where there are none. */
+  readonly inputsAhead?: readonly InputOutlook[];
   readonly lastReadingMs: number | null;
 }
+
+const outlookFields = (outlook: InputOutlook): z.output<typeof inputOutlookSchema> => ({
+  input: outlook.input,
+  unit: outlook.unit,
+  use: outlook.use,
+  plan_age_s: outlook.planAgeMs === null ? null : Math.max(0, outlook.planAgeMs) / 1000,
+  plan_until: outlook.planUntilMs === null ? null : formatInstant(outlook.planUntilMs),
+  plan_error: outlook.planError,
+  usual_error: outlook.usualError,
+});
 
 /** Refuses paths of unlike lengths and bounds that do not hold the median. */
 const checkPaths = (message: ForecastMessage): ForecastMessage => {
@@ -115,6 +161,7 @@ export const forecastMessage = (facts: ForecastFacts): Uint8Array => {
       time: timeMs === null ? null : formatInstant(timeMs),
     })),
     inputs: facts.inputs,
+    ...(facts.inputsAhead?.length ? { inputs_ahead: facts.inputsAhead.map(outlookFields) } : {}),
     last_reading_at: facts.lastReadingMs === null ? null : formatInstant(facts.lastReadingMs),
   };
   const payload = writeJson(message);

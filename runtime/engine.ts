@@ -9,6 +9,7 @@ import type { Disk } from './disk.ts';
 import { Counters } from './health.ts';
 import { Aligner, type LateChange } from './ingest/align.ts';
 import { type DecodedReading, ReadingDecoder } from './ingest/decode.ts';
+import { PlanKeeper, type PlanOutcome } from './ingest/plans.ts';
 import { refusedBecause } from './ingest/quality.ts';
 import { RecentTicks } from './ingest/recent.ts';
 import { Journal, type JournalPosition } from './residuals/journal.ts';
@@ -39,6 +40,7 @@ const MAX_GAP_TICKS = 50_000;
 export class Engine {
   readonly counters = new Counters();
   readonly decoder: ReadingDecoder;
+  readonly plans: PlanKeeper;
   readonly aligner: Aligner;
   readonly spool: Spool;
   readonly identity: Identity;
@@ -55,6 +57,7 @@ export class Engine {
     const channels = [...site.signals, ...site.inputs];
     this.#options = options;
     this.decoder = new ReadingDecoder(site);
+    this.plans = new PlanKeeper(site);
     this.#ranges = channels.map((channel) => channel.range);
     const aggregates = channels.map((channel) => channel.aggregate);
     this.aligner = new Aligner({ tickMs: site.tickMs, latenessMs: site.latenessMs, aggregates });
@@ -79,6 +82,10 @@ export class Engine {
     return Buffer.from(this.identity.stream).toString('hex');
   }
 
+  get site(): Site {
+    return this.#options.site;
+  }
+
   get serving(): Serving | null {
     return this.#serving;
   }
@@ -95,6 +102,17 @@ export class Engine {
       (reading) => this.#reading(reading, arrivalMs, notAfterMs),
       (_, cause) => this.counters.refuse(cause),
     );
+  }
+
+  /**
+   * Takes one MQTT message in that may be a plan, and says what became of it; forecasts then stand under it at once.
+   *
+   * nowMs  null where the time is not known
+   */
+  plan(topic: string, payload: Uint8Array, nowMs: number | null): PlanOutcome[] {
+    const outcomes = this.plans.take(topic, payload, nowMs);
+    if (outcomes.some(({ kind }) => kind === 'taken' || kind === 'withdrawn')) this.#serving?.replan();
+    return outcomes;
   }
 
   /**
@@ -124,6 +142,8 @@ export class Engine {
   /** Puts a bundle to work: warmed on the recent ticks, changed at the present tick boundary. */
   install(checked: CheckedBundle): void {
     const after = this.#warmed(checked);
+    after.plans = this.plans;
+    after.replan();
     if (this.#journal !== null && this.#serving !== null) this.#journal.turnOver(this.#serving, after);
     else {
       this.#journal = this.#openJournal();
@@ -175,6 +195,7 @@ export class Engine {
       this.#align(record);
     }
     if (serving.tick >= 0 && this.aligner.nextTick !== serving.tick + 1) this.aligner.startAt(serving.tick + 1);
+    serving.plans = this.plans;
     this.#serving = serving;
     this.#journal = this.#openJournal();
     this.#journal.resume(checkpoint.state, validBytes, kept);
@@ -264,6 +285,7 @@ export class Engine {
     const serving = this.#serving;
     const journal = this.#journal;
     this.#recent.push(tick, values);
+    this.plans.came(tick, values);
     this.counters.ticks++;
     if (serving === null || journal === null) return;
     if (toDisk) journal.tick(tick, values);
@@ -294,6 +316,7 @@ export class Engine {
     }
     if (this.#serving === null || this.#journal === null) return;
     const after = new Serving(this.#serving.checked);
+    after.plans = this.plans;
     this.#journal.turnOver(this.#serving, after);
     this.#serving = after;
   }

@@ -93,7 +93,9 @@ export class Gateway {
     });
     this.#release();
     this.#setStatus();
-    void this.#connection.subscribe(filtersOf(this.#topics, this.engine.decoder.filters)).catch(() => {});
+    void this.#connection
+      .subscribe(filtersOf(this.#topics, [...this.engine.plans.filters, ...this.engine.decoder.filters]))
+      .catch(() => {});
     this.#pulse();
   }
 
@@ -214,7 +216,10 @@ export class Gateway {
         {
           bundle: (sealed) => void this.offerBundle(sealed, 'from the broker'),
           receipt: (bytes) => this.#receipt(bytes),
-          reading: (from, bytes) => this.#reading(from, bytes),
+          reading: (from, bytes) => {
+            this.#plan(from, bytes);
+            this.#reading(from, bytes);
+          },
         },
         topic,
         payload,
@@ -232,6 +237,25 @@ export class Gateway {
     const notAfterMs = this.#config.clock === 'wall' && isSet ? wall + site.latenessMs + site.tickMs : null;
     this.engine.message(topic, payload, wall, notAfterMs);
     if (this.#config.clock === 'readings' || !isSet) this.#closeTicks();
+  }
+
+  /** A message of a plan topic; any other passes without a trace. */
+  #plan(topic: string, payload: Uint8Array): void {
+    const { log } = this.#ports;
+    const outcomes = this.engine.plan(topic, payload, this.#nowMs());
+    for (const { input, kind, cause, text } of outcomes) {
+      if (kind === 'refused') log.warn(`plan of ${input} refused (${cause}): ${text}`);
+      else if (kind !== 'known') log.info(`plan of ${input} ${kind === 'taken' ? 'taken' : 'taken back'}`);
+    }
+    if (outcomes.some(({ kind }) => kind === 'taken' || kind === 'withdrawn')) this.#publishSoon();
+  }
+
+  /** The wall clock, or the newest reading's time where only that can be believed; null: neither. */
+  #nowMs(): number | null {
+    const wall = this.#ports.clock.wall();
+    if (this.#config.clock === 'wall' && wall >= CLOCK_UNSET_MS) return wall;
+    const { newestMs } = this.engine.aligner;
+    return Number.isFinite(newestMs) ? newestMs : null;
   }
 
   #receipt(payload: Uint8Array): void {
@@ -287,11 +311,14 @@ export class Gateway {
     if (closed === 0) return;
     this.#publisher.isCatchingUp = byWall && closed >= CATCHING_UP_TICKS;
     if (byWall) this.#publishTick();
-    else if (!this.#isPublishDue) {
-      // Readings of many ticks often come in one go: forecasts of the last one are enough.
-      this.#isPublishDue = true;
-      setImmediate(() => this.#publishTick());
-    }
+    else this.#publishSoon();
+  }
+
+  /** Readings of many ticks, or plans of many inputs, often come in one go: forecasts of the last one are enough. */
+  #publishSoon(): void {
+    if (this.#isPublishDue) return;
+    this.#isPublishDue = true;
+    setImmediate(() => this.#publishTick());
   }
 
   #publishTick(): void {
@@ -302,7 +329,7 @@ export class Gateway {
       const wall = this.#ports.clock.wall();
       const byWall = this.#config.clock === 'wall' && wall >= CLOCK_UNSET_MS;
       const issuedAtMs = byWall ? wall : this.engine.aligner.newestMs;
-      this.#publisher.tick(serving, this.engine.aligner.lastReadingMs, issuedAtMs);
+      this.#publisher.tick(serving, this.engine.plans, this.engine.aligner.lastReadingMs, issuedAtMs);
     }
     this.#tend(false);
     const before = this.#status;

@@ -30,6 +30,12 @@ export interface CheckedBundle {
   readonly sequence: number;
 }
 
+/** Where a serving bundle finds what is planned for the inputs. */
+export interface PlanSource {
+  /** Fills (nu × H) standardised, NaN where nothing is planned, for the ticks after `tick`; returns whether anything is. */
+  fill(model: Model, tick: number, out: Float64Array): boolean;
+}
+
 /** See the file head. Buffers are overwritten by each step. */
 export class Serving {
   /** Replaced when the same document comes under a higher sequence. */
@@ -47,7 +53,10 @@ export class Serving {
   readonly upper: Float64Array;
   /** (nc) 1 where the tick's reading lay outside what the bundle folds in. */
   readonly isOutside: Uint8Array;
+  /** null: ticks of the past are stepped through, and what was planned then is not known. */
+  plans: PlanSource | null = null;
   readonly #values: Float64Array;
+  readonly #plan: Float64Array;
 
   constructor(checked: CheckedBundle) {
     const { model } = checked;
@@ -58,6 +67,7 @@ export class Serving {
     this.lattice = new Float64Array(model.channelCount);
     this.predicted = new Float64Array(model.channelCount);
     this.#values = new Float64Array(model.channelCount);
+    this.#plan = new Float64Array((model.channelCount - model.signalCount) * model.horizon);
     this.isOutside = new Uint8Array(model.channelCount);
     this.median = new Float64Array(model.signalCount * model.horizon);
     this.lower = new Float64Array(this.median.length);
@@ -95,8 +105,16 @@ export class Serving {
       this.isOutside[c] = this.#values[c]! < model.clipLow[c]! || this.#values[c]! > model.clipHigh[c]! ? 1 : 0;
     }
     update(model, state, tick, this.#values);
-    forecastPath(model, state, this.median);
+    this.replan();
     trackBounds(model, this.bounds, state, this.median);
+  }
+
+  /** Forecasts anew from where the filter stands, under the plans of now; what was issued before is tracked as it was. */
+  replan(): void {
+    const { model, state, plans } = this;
+    if (state.tick < 0) return;
+    const isPlanned = plans?.fill(model, state.tick, this.#plan) ?? false;
+    forecastPath(model, state, this.median, isPlanned ? this.#plan : null);
   }
 
   /** Brings lower and upper to the present path. */
@@ -117,6 +135,6 @@ export class Serving {
   restore(state: Uint8Array, bounds: Uint8Array): void {
     this.state = state.length === 0 ? createState(this.model) : restoreState(this.model, state);
     this.bounds = restoreBounds(this.model, bounds);
-    if (this.state.tick >= 0) forecastPath(this.model, this.state, this.median);
+    this.replan();
   }
 }

@@ -41,9 +41,15 @@ export function forecastPayload(
     lower: path(serving.lower),
     upper: path(serving.upper),
     limits: outlooks(serving, signal, occasion.site.signals[signal]!.limits),
-    inputs: model.channelCount > model.signalCount ? 'held' : 'none',
+    inputs: inputsWord(occasion),
+    inputsAhead: occasion.inputs,
     lastReadingMs: Number.isNaN(lastReadingMs) ? null : lastReadingMs,
   });
+}
+
+function inputsWord({ inputs }: Occasion): 'none' | 'held' | 'planned' {
+  if (inputs.length === 0) return 'none';
+  return inputs.some(({ use }) => use === 'planned') ? 'planned' : 'held';
 }
 
 /** Payload with the paths of all signals. */

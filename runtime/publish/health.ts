@@ -11,6 +11,7 @@ import {
 import type { Engine } from '../engine.ts';
 import type { ShipCounts } from '../residuals/ship.ts';
 import { VERSION } from '../version.ts';
+import { inputOutlooks, planFault } from './inputs.ts';
 import { type Judged, judge } from './quality.ts';
 
 /** 9999-12-31: what a will says stays true until it is replaced. */
@@ -101,12 +102,18 @@ export function healthPayload(report: HealthReport): Uint8Array {
       segments_in_conflict: ship.conflicts,
       segments_shed: journal?.counts.shedSegments ?? 0,
       segments_lost: (journal?.counts.lost ?? 0) + spool.damaged,
+      ...planCounts(engine),
       spool_bytes: spool.bytes,
       reconnects: report.reconnects,
     },
     lastChange: report.lastChange,
     versions: VERSIONS,
   });
+}
+
+/** Nothing at sites without plans. */
+function planCounts({ plans }: Engine): Record<string, number | Readonly<Record<string, number>>> {
+  return plans.filters.length === 0 ? {} : { plans: plans.taken, plans_refused: plans.refused };
 }
 
 function judgeGateway(report: HealthReport): Judged {
@@ -116,7 +123,8 @@ function judgeGateway(report: HealthReport): Judged {
   if (serving === null) return { quality: 'F', qualityReason: 'no bundle serves' };
   const fault = journal?.fault ?? null;
   if (fault !== null) return { quality: 'M', qualityReason: `nothing is being kept on disk: ${fault}` };
-  return judgeClock(report) ?? judge(serving, false, null);
+  const outlooks = inputOutlooks(serving, engine.plans, engine.site, report.nowMs);
+  return judgeClock(report) ?? judge(serving, false, null, planFault(serving, engine.plans, outlooks, null));
 }
 
 /** By the wall clock no tick closes before its end: one closed ahead of now says that the clock was set back. */

@@ -4,8 +4,10 @@
  * valid_until is three ticks after the successor was due: a forecast not replaced by then comes from a gateway that has
  * stopped, hung or lost its broker, and must not be read as new, however far its horizon still reaches.
  */
-import type { MessageHead, Site } from '@stillwell/protocol';
+import type { InputOutlook, MessageHead, Site } from '@stillwell/protocol';
+import type { PlanKeeper } from '../ingest/plans.ts';
 import type { Serving } from '../serving.ts';
+import { planFault } from './inputs.ts';
 import { judge } from './quality.ts';
 
 const GRACE_TICKS = 3;
@@ -16,6 +18,9 @@ export interface Occasion {
   readonly gateway: string;
   readonly issuedAtMs: number;
   readonly isCatchingUp: boolean;
+  readonly plans: PlanKeeper;
+  /** What the forecasts made of the inputs. */
+  readonly inputs: readonly InputOutlook[];
 }
 
 /** When the messages of a tick cease to hold, ms since 1970. */
@@ -26,7 +31,7 @@ export function validUntil(tick: number, site: Site): number {
 
 /** The common part of a tick's messages, judged for one signal or for all. */
 export function headOf(serving: Serving, occasion: Occasion, signal: number | null): MessageHead {
-  const { site, gateway, issuedAtMs, isCatchingUp } = occasion;
+  const { site, gateway, issuedAtMs, isCatchingUp, plans, inputs } = occasion;
   return {
     site: site.site,
     gateway,
@@ -34,6 +39,6 @@ export function headOf(serving: Serving, occasion: Occasion, signal: number | nu
     sequence: serving.checked.sequence,
     issuedAtMs,
     validUntilMs: validUntil(serving.tick, site),
-    ...judge(serving, isCatchingUp, signal),
+    ...judge(serving, isCatchingUp, signal, planFault(serving, plans, inputs, signal)),
   };
 }

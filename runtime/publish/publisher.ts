@@ -5,6 +5,7 @@
 import type { BundleChange, HealthStatus, SiteTopics } from '@stillwell/protocol';
 import type { GatewayConfig } from '../config.ts';
 import type { Engine } from '../engine.ts';
+import type { PlanKeeper } from '../ingest/plans.ts';
 import type { Connection, Outgoing, Will } from '../mqtt/connection.ts';
 import type { GatewayPorts } from '../ports.ts';
 import type { ShipCounts } from '../residuals/ship.ts';
@@ -12,6 +13,7 @@ import type { Serving } from '../serving.ts';
 import { writeStatus } from '../status.ts';
 import { forecastPayload, forecastsPayload } from './forecasts.ts';
 import { healthPayload, willPayload } from './health.ts';
+import { inputOutlooks } from './inputs.ts';
 import { validUntil } from './moment.ts';
 import { statePayload } from './state.ts';
 
@@ -50,11 +52,12 @@ export class Publisher {
   }
 
   /** State and forecasts of the tick that `serving` has folded in last. */
-  tick(serving: Serving, lastReadingMs: Float64Array, issuedAtMs: number): void {
+  tick(serving: Serving, plans: PlanKeeper, lastReadingMs: Float64Array, issuedAtMs: number): void {
     if (!this.#connection.isConnected || this.#connection.backlogBytes > MOST_BACKLOG_BYTES) return;
     serving.computeBounds();
     const { site, gateway, clock } = this.#config;
-    const occasion = { site, gateway, issuedAtMs, isCatchingUp: this.isCatchingUp };
+    const inputs = inputOutlooks(serving, plans, site, issuedAtMs);
+    const occasion = { site, gateway, issuedAtMs, isCatchingUp: this.isCatchingUp, plans, inputs };
     // In event time the broker's clock knows nothing of the message's.
     const leftMs = clock === 'wall' ? validUntil(serving.tick, site) - issuedAtMs : Number.NaN;
     const send = (topic: string, payload: Uint8Array, contentType: string): void => {

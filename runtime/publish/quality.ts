@@ -1,6 +1,7 @@
 /**
  * How far a forecast may be trusted, as a status letter in the sense of NAMUR NE 107: C while the filter warms up or
- * catches up, S where a reading lies outside what the bundle was trained on, M where readings are missing. F, no usable
+ * catches up, S where a reading lies outside what the bundle was trained on or a plan in use proved wrong, M where readings
+ * are missing. F, no usable
  * model, is said in health: without a model nothing is forecast.
  */
 import type { Quality } from '@stillwell/protocol';
@@ -16,8 +17,13 @@ export interface Judged {
 /** A signal without readings for so many ticks counts as stale. */
 const STALE_TICKS = 3;
 
-/** Judges one signal, or all of them where `signal` is null. */
-export function judge(serving: Serving, isCatchingUp: boolean, signal: number | null): Judged {
+/** Judges one signal, or all of them where `signal` is null; `planFault` says how plans in use proved wrong. */
+export function judge(
+  serving: Serving,
+  isCatchingUp: boolean,
+  signal: number | null,
+  planFault: string | null,
+): Judged {
   if (serving.isWarming) {
     const { warmed } = serving.bounds;
     return bad('C', `warming up: ${warmed} of ${serving.model.warmupTicks} ticks`);
@@ -28,6 +34,7 @@ export function judge(serving: Serving, isCatchingUp: boolean, signal: number | 
   const to = signal === null ? serving.model.signalCount : signal + 1;
   for (let i = from; i < to; i++)
     if (serving.isOutside[i] === 1) return bad('S', `${channels[i]!.name}: reading outside the trained range`);
+  if (planFault !== null) return bad('S', planFault);
   for (let i = from; i < to; i++) {
     const age = serving.state.age[i]!;
     if (age >= STALE_TICKS) return bad('M', `${channels[i]!.name}: no reading for ${age} ticks or more`);
