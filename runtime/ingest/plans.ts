@@ -153,8 +153,10 @@ export class PlanKeeper {
     try {
       const plan = parsePlan(payload, { tickMs, horizon, range: inputs[u]!.range, nowMs });
       const madeAtMs = Math.min(plan.issuedAtMs ?? Number.POSITIVE_INFINITY, nowMs ?? plan.issuedAtMs ?? Number.NaN);
-      const ruling = this.#slots[u]!.inForce?.plan.issuedAtMs ?? null;
-      if (plan.issuedAtMs === null || ruling === null || plan.issuedAtMs >= ruling)
+      const { inForce } = this.#slots[u]!;
+      // By our clock: a maker whose clock is ahead must not shut out its own later plans.
+      const ruling = inForce === null || inForce.plan.issuedAtMs === null ? Number.NaN : inForce.madeAtMs;
+      if (plan.issuedAtMs === null || !(plan.issuedAtMs < ruling))
         return { kind: 'taken', cause: '', text: '', inForce: { plan, madeAtMs } };
       const [got, than] = [plan.issuedAtMs, ruling].map((ms) => new Date(ms).toISOString());
       const text = `plan: issued_at: expected ${than} or later, when the ruling plan was made, got ${got}`;
