@@ -59,7 +59,7 @@ function excluding(spans: Spans, signals: readonly string[] | null = null): Site
 
 function learn(values: readonly Float64Array[], of: Site): Promise<FitResult> {
   const { series, lattices } = prepare(history(values), of, 0.2);
-  return fitHistory({ series, site: of, survey: {}, lattices }, FIT_DEFAULTS);
+  return fitHistory({ series, site: of, survey: {}, lattices }, { ...FIT_DEFAULTS, kind: 'linear' });
 }
 
 const cleanSeries = prepare(history(clean), site, 0.2).series;
@@ -115,18 +115,19 @@ describe('whatever the excluded readings are', () => {
   const garbage = (spans: Spans) =>
     changed(spans, (c, random) => (c === 0 ? 1e7 * random() : c === 1 ? -5 : Number.NaN));
 
-  it('model and bounds are the same, and the judged figures where the filter’s memory reaches no excluded time', async () => {
-    for (const spans of [TAUGHT, TAUGHT.slice(0, 1)]) {
-      const one = await learn(drained(spans), excluding(spans));
-      const other = await learn(garbage(spans), excluding(spans));
-      const { provenance: p1, judge: j1, ...first } = one.bundle;
-      const { provenance: p2, judge: j2, ...second } = other.bundle;
-      expect(second).toEqual(first);
-      expect(p2.options).toBe(p1.options);
-      // The filter sees what the gateway will see: days after an overhaul it still remembers it.
-      if (spans === TAUGHT) expect(j2).not.toEqual(j1);
-      else expect([j2, other.hindcast]).toEqual([j1, one.hindcast]);
-    }
+  const figures = ({ hindcast: { count, mse, bias, coverage, width, rivalMse, residuals } }: FitResult) => [
+    ...[count, mse, bias, coverage, width, rivalMse],
+    ...residuals,
+  ];
+
+  it('model and bounds are the same; the judge replays what the gateway will see, which remembers an overhaul for days', async () => {
+    const one = await learn(drained(TAUGHT), excluding(TAUGHT));
+    const other = await learn(garbage(TAUGHT), excluding(TAUGHT));
+    const { provenance: p1, judge: j1, ...first } = one.bundle;
+    const { provenance: p2, judge: j2, ...second } = other.bundle;
+    expect(second).toEqual(first);
+    expect(p2.options).toBe(p1.options);
+    expect(j2).not.toEqual(j1);
   });
 
   it('all of it is the same, in the judged part too, where the signals are named', async () => {
@@ -134,7 +135,7 @@ describe('whatever the excluded readings are', () => {
     const one = await learn(drained(all), excluding(all, NAMES));
     const other = await learn(garbage(all), excluding(all, NAMES));
     expect(other.document).toEqual(one.document);
-    expect(other.hindcast).toEqual(one.hindcast);
+    expect(figures(other)).toEqual(figures(one));
   });
 });
 
