@@ -2,7 +2,17 @@
  * Whether the fields of a bundle agree with each other: shapes of every tensor, order of channels and lags, moduli below
  * one. A bundle that passes computes without reading past an array and without growing for ever.
  */
-import type { Bundle, BundleChannel, LinearTensors } from './bundle.ts';
+import type {
+  Bundle,
+  BundleChannel,
+  BundleKind,
+  DenseTensors,
+  LinearTensors,
+  ResponseTensors,
+  RoundPart,
+} from './bundle.ts';
+import { checkDriven, checkFeatures } from './bundle-features-check.ts';
+import { checkSwitched } from './bundle-switched-check.ts';
 import { toHex } from './digest.ts';
 import { ProtocolError } from './errors.ts';
 import { bundleSchemaHash } from './schema-hash.ts';
@@ -42,9 +52,19 @@ const checkChannels = (channels: readonly BundleChannel[]): number => {
   return signals;
 };
 
+const SECTIONS = {
+  linear: ['linear'],
+  dense: ['dense'],
+  featured: ['linear', 'features'],
+  switched: ['linear', 'switched'],
+  driven: ['driven'],
+} as const satisfies Record<BundleKind, readonly (keyof Bundle)[]>;
+
 /** Sections each kind must have, and may not have. */
 const checkSections = (bundle: Bundle): void => {
-  if (bundle.linear === undefined) refuse('linear', `expected the tensors of kind "${bundle.kind}", got none`);
+  for (const needed of SECTIONS[bundle.kind]) {
+    if (bundle[needed] === undefined) refuse(needed, `expected the tensors of kind "${bundle.kind}", got none`);
+  }
 };
 
 const checkLinear = (bundle: Bundle, linear: LinearTensors, signals: number): void => {
@@ -69,6 +89,78 @@ const checkLinear = (bundle: Bundle, linear: LinearTensors, signals: number): vo
   const ownWidth = (1 + bundle.channels.length - signals) * features;
   if (own !== undefined) checkTensor(own, signals * basis, ownWidth, QUANTISED, 'linear.own');
   checkTensor(horizonBasis, bundle.horizon, basis, QUANTISED, 'linear.horizonBasis');
+};
+
+const checkDense = (bundle: Bundle, dense: DenseTensors, signals: number): void => {
+  const { pairs, poles, drive, level, readout, horizonBasis } = dense;
+  const order = poles.cols;
+  const basis = horizonBasis.cols;
+  if (order === 0) refuse('dense.poles', 'expected at least one column, got none');
+  if (basis === 0) refuse('dense.horizonBasis', 'expected at least one column, got none');
+  if (2 * pairs > order) refuse('dense.pairs', `expected at most ${Math.floor(order / 2)}, got ${pairs}`);
+  checkTensor(poles, 1, order, FLOATS, 'dense.poles');
+  const values = dequantise(poles);
+  for (let k = 0; k < order; k += k < 2 * pairs ? 2 : 1) {
+    const im = k < 2 * pairs ? values[k + 1]! : 0;
+    const modulus = Math.sqrt(values[k]! * values[k]! + im * im);
+    if (!(modulus < 1)) refuse(`dense.poles, column ${k}`, `expected a modulus below 1, got ${modulus}`);
+  }
+  checkTensor(drive, order, bundle.channels.length, QUANTISED, 'dense.drive');
+  const seen = order + (level === true ? bundle.channels.length : 0);
+  checkTensor(readout, signals * basis, seen, QUANTISED, 'dense.readout');
+  checkTensor(horizonBasis, bundle.horizon, basis, QUANTISED, 'dense.horizonBasis');
+  checkLagged(bundle, dense, signals);
+};
+
+const checkLagged = (bundle: Bundle, { lags = [], lagged }: DenseTensors, signals: number): void => {
+  for (const [i, lag] of lags.entries()) {
+    if (i > 0 && lag <= lags[i - 1]!) refuse(`dense.lags[${i}]`, `expected a lag above ${lags[i - 1]}, got ${lag}`);
+  }
+  if (lags.length > 0 !== (lagged !== undefined))
+    refuse(
+      'dense.lagged',
+      `expected it together with lags, got ${lags.length} lags and ${lagged === undefined ? 'no' : 'a'} tensor`,
+    );
+  if (lagged === undefined) return;
+  const steps = lagged.rows / signals;
+  if (!(Number.isInteger(steps) && steps >= 1 && steps <= bundle.horizon))
+    refuse(
+      'dense.lagged',
+      `expected as many rows for each of ${signals} signals, up to the horizon, got ${lagged.rows}`,
+    );
+  checkTensor(lagged, lagged.rows, lags.length, QUANTISED, 'dense.lagged');
+};
+
+/** Shapes that follow from the section alone; the width of its readout follows from the kind and is the filter's to check. */
+const checkRound = (bundle: Bundle, { ticks, weight }: RoundPart, signals: number): void => {
+  if (ticks < bundle.horizon) refuse('round.ticks', `expected at least the horizon, ${bundle.horizon}, got ${ticks}`);
+  if (weight.length !== signals) refuse('round.weight', `expected ${signals} numbers, got ${weight.length}`);
+};
+
+const checkResponse = (bundle: Bundle, response: ResponseTensors, signals: number): void => {
+  const { inputs, decays, delay, gain, looks, readout, basis, surprise } = response;
+  const planned = inputs.length;
+  const rising = (values: readonly number[], name: string, most: number): void => {
+    for (const [k, value] of values.entries()) {
+      if (value <= most && (k === 0 || value > values[k - 1]!)) continue;
+      refuse(`response.${name}[${k}]`, `expected rising numbers up to ${most}, got ${values.join(', ')}`);
+    }
+  };
+  rising(inputs, 'inputs', bundle.channels.length - signals - 1);
+  rising(looks, 'looks', bundle.horizon);
+  for (const [name, list, length] of [
+    ['delay', delay, signals * planned],
+    ['surprise', surprise, planned],
+  ] as const) {
+    if (list.length !== length) refuse(`response.${name}`, `expected ${length} numbers, got ${list.length}`);
+  }
+  const late = delay.find((ticks) => ticks >= bundle.horizon);
+  if (late !== undefined) refuse('response.delay', `expected ticks below the horizon, ${bundle.horizon}, got ${late}`);
+  if (basis.rows === 0 || basis.rows % planned !== 0)
+    refuse('response.basis', `expected as many rows for each of ${planned} inputs, got ${basis.rows}`);
+  checkTensor(gain, signals, planned * (decays.length + 2), QUANTISED, 'response.gain');
+  checkTensor(readout, basis.rows, readout.cols, QUANTISED, 'response.readout');
+  checkTensor(basis, basis.rows, bundle.horizon, QUANTISED, 'response.basis');
 };
 
 /** Exponents are integers as they stand: a scale would change them. */
@@ -129,6 +221,18 @@ export const checkBundle = (bundle: Bundle): void => {
   if (expected !== got) refuse('schema', `expected ${expected} for these channels and this tick, got ${got}`);
   checkSections(bundle);
   if (bundle.linear !== undefined) checkLinear(bundle, bundle.linear, signals);
+  if (bundle.dense !== undefined) checkDense(bundle, bundle.dense, signals);
+  const around = {
+    channels: bundle.channels.length,
+    signals,
+    basis: bundle.linear?.horizonBasis.cols ?? 0,
+    order: bundle.linear?.bottleneck.rows ?? 0,
+  };
+  if (bundle.features !== undefined) checkFeatures(bundle.features, around);
+  if (bundle.switched !== undefined) checkSwitched(bundle.switched, { ...around, horizon: bundle.horizon });
+  if (bundle.driven !== undefined) checkDriven(bundle.driven, around);
+  if (bundle.response !== undefined) checkResponse(bundle, bundle.response, signals);
+  if (bundle.round !== undefined) checkRound(bundle, bundle.round, signals);
   checkSeasonal(bundle, signals);
   checkRadius(bundle, signals);
   checkJudge(bundle, signals);

@@ -5,7 +5,7 @@ import { z } from 'zod';
 import { binary } from './binary.ts';
 import { BUNDLE_KINDS, type Bundle, CROSSING_KNOTS } from './bundle.ts';
 import { type ChannelColumns, channelColumnsSchema } from './channel-columns.ts';
-import { MAX_HORIZON, MAX_LAG_TICKS, MAX_TICK_MS, MIN_TICK_MS } from './limits.ts';
+import { MAX_CHANNELS, MAX_HORIZON, MAX_LAG_TICKS, MAX_ROUND_TICKS, MAX_TICK_MS, MIN_TICK_MS } from './limits.ts';
 import { isName, NAME_RULE } from './name.ts';
 
 const bytes = binary();
@@ -40,6 +40,101 @@ export const linearSchema = z.strictObject({
   readout: tensorSchema,
   own: tensorSchema.optional(),
   horizonBasis: tensorSchema,
+});
+
+/** Tensors and numbers of the dense kind. */
+export const denseSchema = z.strictObject({
+  pairs: count,
+  poles: tensorSchema,
+  drive: tensorSchema,
+  level: z.literal(true).optional(),
+  readout: tensorSchema,
+  horizonBasis: tensorSchema,
+  lags: z.array(z.int().min(1).max(MAX_LAG_TICKS)).max(64).optional(),
+  lagged: tensorSchema.optional(),
+});
+
+/** Random features beside the linear kind. */
+export const featuresSchema = z.strictObject({
+  seed,
+  width: positive,
+  count: z.int().min(1).max(16_384),
+  states: count,
+  channels: z.array(count).max(MAX_CHANNELS),
+  projection: tensorSchema,
+  offset: tensorSchema,
+  readout: tensorSchema,
+});
+
+/** What the switched kind adds to the linear one. */
+export const switchedSchema = z.strictObject({
+  modes: z.int().min(2).max(64),
+  discrete: z.array(count).max(MAX_CHANNELS),
+  driven: z.array(count).max(MAX_CHANNELS),
+  forecast: z.array(count).max(MAX_CHANNELS),
+  centre: tensorSchema,
+  spread: tensorSchema,
+  slope: tensorSchema,
+  habit: z.number().min(0).lt(1),
+  drift: tensorSchema,
+  coupling: tensorSchema,
+  pairs: z.array(z.tuple([count, count])).max(4096),
+  landing: tensorSchema,
+  hazard: tensorSchema,
+  dwellTicks: z.int().min(1).max(1_000_000),
+  decays: z.array(share).min(1).max(16),
+  limit: tensorSchema,
+  featureScale: tensorSchema,
+  outlook: tensorSchema,
+  outlookBasis: tensorSchema,
+  seasonTicks: count,
+  season: tensorSchema,
+  doubt: tensorSchema,
+  doubtScale: tensorSchema,
+  correction: z
+    .strictObject({
+      count: z.int().min(1).max(4096),
+      readout: tensorSchema,
+      basis: tensorSchema,
+      limit: tensorSchema,
+    })
+    .optional(),
+});
+
+/** Tensors and numbers of the driven kind. */
+export const drivenSchema = z.strictObject({
+  seed,
+  width: positive,
+  members: z.int().min(1).max(64),
+  hidden: z.int().min(0).max(64),
+  features: z.int().min(1).max(4096),
+  linear: tensorSchema,
+  gain: tensorSchema,
+  start: tensorSchema,
+  sensor: z.array(z.tuple([z.number(), z.number()])).max(MAX_CHANNELS),
+  fadeDecays: z.array(share).min(1).max(16),
+  meanDecays: z.array(share).min(1).max(16),
+  deviation: tensorSchema,
+  inputs: tensorSchema,
+  settleTicks: count,
+});
+
+/** What a plan of the inputs adds. */
+export const responseSchema = z.strictObject({
+  inputs: z.array(count).min(1).max(MAX_CHANNELS),
+  decays: z.array(share).max(64),
+  delay: z.array(count).max(65_536),
+  gain: tensorSchema,
+  looks: z.array(z.int().min(1).max(MAX_HORIZON)).max(64),
+  readout: tensorSchema,
+  basis: tensorSchema,
+  surprise: z.array(z.number().min(0)).max(MAX_CHANNELS),
+});
+
+/** What a round ago is taken away. */
+export const roundSchema = z.strictObject({
+  ticks: z.int().min(1).max(MAX_ROUND_TICKS),
+  weight: z.array(z.number().min(0).max(1)).min(1).max(MAX_CHANNELS),
 });
 
 /** Where long gaps fade to. */
@@ -110,6 +205,12 @@ export const bundleSchema = z.strictObject({
   horizon: z.int().min(1).max(MAX_HORIZON),
   channels: channelColumnsSchema,
   linear: linearSchema.optional(),
+  dense: denseSchema.optional(),
+  features: featuresSchema.optional(),
+  switched: switchedSchema.optional(),
+  driven: drivenSchema.optional(),
+  response: responseSchema.optional(),
+  round: roundSchema.optional(),
   seasonal: seasonalSchema,
   bounds: boundsSchema,
   guard: guardSchema,

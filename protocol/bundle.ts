@@ -3,6 +3,8 @@
  * Sequence number and key epoch stand in the envelope (seal.ts), so that an old document can be sealed again under a
  * higher number with the same digest.
  */
+import type { DrivenTensors, FeatureTensors } from './bundle-features.ts';
+import type { SwitchedTensors } from './bundle-switched.ts';
 import type { Aggregate, Limits } from './site.ts';
 import type { Tensor } from './tensor.ts';
 
@@ -46,6 +48,26 @@ export interface LinearTensors {
   readonly horizonBasis: Tensor;
 }
 
+/** The tensors of the dense kind; sizes: nc channels, ny signals, d order, r basis, H horizon. */
+export interface DenseTensors {
+  /** Complex poles; they come first, each as two numbers of the state. */
+  readonly pairs: number;
+  /** (1 × d) f32: re, im of each pair, then the real poles; moduli below 1. */
+  readonly poles: Tensor;
+  /** (d × nc) i8: what a change of each channel adds to each number of the state. */
+  readonly drive: Tensor;
+  /** The read-out also sees the level of every channel, the mean less the value; absent: it does not. */
+  readonly level?: true | undefined;
+  /** (ny·r × d) i8, or d + nc with the level; row i·r + k: coefficient k of signal i from the state, then from the levels. */
+  readonly readout: Tensor;
+  /** (H × r) i8: forecast z(t+h) = z(t) + Σ_k B[h-1, k] coefficient k. */
+  readonly horizonBasis: Tensor;
+  /** Ring lags in ticks, ascending; absent or empty: none. */
+  readonly lags?: readonly number[] | undefined;
+  /** (ny·S × lags) i8, row i·S + h - 1: what each z_i(t-lag) - z_i(t) adds to signal i at step h = 1..S; absent without lags. */
+  readonly lagged?: Tensor | undefined;
+}
+
 /** Mean over the period by phase, where long gaps fade to. */
 export interface SeasonalTable {
   /** Ticks in the period; 0: no period, the overall mean. Phase of tick n is n mod period. */
@@ -72,8 +94,39 @@ export interface JudgeTable {
   readonly override: string | null;
 }
 
+/**
+ * What a plan of the inputs adds to a path made without one; sizes: np planned inputs, nb poles, r curves, S looks,
+ * ny signals, d order, H horizon. Standardised.
+ */
+export interface ResponseTensors {
+  /** (np) which inputs, counted from the first input, rising. */
+  readonly inputs: readonly number[];
+  /** (nb) poles of the filters that the surprise of a plan runs through. */
+  readonly decays: readonly number[];
+  /** (ny·np) ticks before an input shows in a signal, at i·np + k. */
+  readonly delay: readonly number[];
+  /** (ny × np·(nb + 2)) for each input: direct, poles in order, running sum over H. */
+  readonly gain: Tensor;
+  /** (S) steps of the path that expectations of inputs are read from, rising. */
+  readonly looks: readonly number[];
+  /** (np·r × (d + ny·S)) of the predictive state, then of each signal's path less its value now. */
+  readonly readout: Tensor;
+  /** (np·r × H): expected input(t+h) = input(t) + Σ_k basis[k, h-1] coefficient k. */
+  readonly basis: Tensor;
+  /** (np) mean size of plan less expectation over the learning part, had the plan been perfect. */
+  readonly surprise: readonly number[];
+}
+
+/** The round: what a signal did W ticks ago, weighted, is taken away from it and given back to its path. */
+export interface RoundPart {
+  /** W, at least the horizon. */
+  readonly ticks: number;
+  /** (ny) 0 to 1; 0: the signal has no round. */
+  readonly weight: readonly number[];
+}
+
 /** Kinds of model; each has sections of its own. */
-export const BUNDLE_KINDS = ['linear'] as const;
+export const BUNDLE_KINDS = ['linear', 'dense', 'featured', 'switched', 'driven'] as const;
 
 /** One of them. */
 export type BundleKind = (typeof BUNDLE_KINDS)[number];
@@ -97,6 +150,18 @@ export interface Bundle {
   readonly channels: readonly BundleChannel[];
   /** Absent in kinds without a feature bank. */
   readonly linear?: LinearTensors | undefined;
+  /** Of the dense kind alone. */
+  readonly dense?: DenseTensors | undefined;
+  /** Of the featured kind alone, beside `linear`. */
+  readonly features?: FeatureTensors | undefined;
+  /** Of the switched kind alone, beside `linear`. */
+  readonly switched?: SwitchedTensors | undefined;
+  /** Of the driven kind alone. */
+  readonly driven?: DrivenTensors | undefined;
+  /** Absent where no input is planned, where plans do not help, and in kinds that take plans themselves. */
+  readonly response?: ResponseTensors | undefined;
+  /** What a round ago is taken away before the kind sees a value; absent: nothing. */
+  readonly round?: RoundPart | undefined;
   readonly seasonal: SeasonalTable;
   readonly bounds: {
     readonly coverage: number;

@@ -32,6 +32,9 @@ export const MAX_HORIZON = 1024;
 /** Longest ring lag in ticks: two weeks of minutes, 160 KiB a channel. */
 export const MAX_LAG_TICKS = 20_160;
 
+/** Ticks of a round: its memory, 8 bytes a tick and signal, travels with every keyed segment. */
+export const MAX_ROUND_TICKS = 1024;
+
 /** Shortest tick: below it the tick's own work no longer hides between messages. */
 export const MIN_TICK_MS = 100;
 

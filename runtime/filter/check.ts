@@ -7,6 +7,7 @@ import { kernelOf } from './kernels.ts';
 import type { CommonModel, Model } from './model.ts';
 import { requireEach, requireField, requireLength, requireWeights, requireWhole, WEIGHT_LIMIT } from './requirement.ts';
 import { checkResponse } from './response.ts';
+import { checkRound } from './round.ts';
 
 /** Largest size of a mean, a clip or a lattice offset, in units of the signal. */
 const UNIT_LIMIT = 1e15;
@@ -23,6 +24,7 @@ export function checkModel(model: Model): void {
   checkShapes(model);
   checkChannels(model);
   if (model.response !== undefined) checkResponse(model, model.response);
+  if (model.round !== undefined) checkRound(model, model.round);
   requireWeights(model.seasonal, 'seasonal');
   requireEach(model.radius, 'radius', (value) => value >= 0 && value <= WEIGHT_LIMIT, 'a finite number, zero or more');
   requireField(model.coverage > 0 && model.coverage < 1, 'coverage', 'more than 0 and less than 1', model.coverage);

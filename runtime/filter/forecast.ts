@@ -7,6 +7,7 @@
 import { kernelOf } from './kernels.ts';
 import type { CommonModel, Model } from './model.ts';
 import { respond } from './response.ts';
+import { addRound } from './round.ts';
 import { type FilterState, fadeTicks } from './state.ts';
 
 /**
@@ -82,6 +83,7 @@ export function forecastPath(
 ): void {
   const H = model.horizon;
   kernelOf(model).paths(model, state.core, state, H, plan, median);
+  if (model.round !== undefined) addRound(model, model.round, state, H, median);
   if (plan !== null && model.response !== undefined && state.response !== null)
     respond(model, model.response, state.response, state, plan, median);
   finish(model, state, H, median);
@@ -102,6 +104,7 @@ export function predictStandardised(model: Model, state: FilterState, out: Float
     return;
   }
   kernelOf(model).paths(model, state.core, state, 1, null, out);
+  if (model.round !== undefined) addRound(model, model.round, state, 1, out);
   finish(model, state, 1, out);
   for (let c = model.signalCount; c < model.channelCount; c++) out[c] = state.value[c];
 }

@@ -1,8 +1,18 @@
 /** From a bundle's document to a model ready to compute with. */
-import { type Bundle, dequantise, type LinearTensors, type Tensor } from '@stillwell/protocol';
+import {
+  type Bundle,
+  type DenseTensors,
+  dequantise,
+  type LinearTensors,
+  type ResponseTensors,
+  type Tensor,
+} from '@stillwell/protocol';
 import { checkModel } from './check.ts';
 import { FilterError } from './errors.ts';
-import type { BankModel, CommonModel, Model } from './model.ts';
+import { correctionOf, simulationOf } from './from-features.ts';
+import { sectionOf } from './from-switched.ts';
+import type { BankModel, CommonModel, DenseModel, Model } from './model.ts';
+import type { ResponseModel } from './response.ts';
 
 /**
  * Dequantises a bundle into a model that has passed `checkModel`.
@@ -16,9 +26,17 @@ export function modelFromBundle(bundle: Bundle): Model {
 }
 
 function modelOfKind(bundle: Bundle): Model {
-  const { kind, linear } = bundle;
+  const { kind, linear, dense, features, switched, driven } = bundle;
   const common = commonOf(bundle);
   if (kind === 'linear' && linear !== undefined) return { kind, ...common, ...bankOf(linear) };
+  if (kind === 'dense' && dense !== undefined) return { kind, ...common, ...recursionOf(dense) };
+  if (kind === 'featured' && linear !== undefined && features !== undefined) {
+    return { kind, ...common, ...bankOf(linear), ...correctionOf(features) };
+  }
+  if (kind === 'switched' && linear !== undefined && switched !== undefined) {
+    return { kind, ...common, ...bankOf(linear), switched: sectionOf(switched, common) };
+  }
+  if (kind === 'driven' && driven !== undefined) return { kind, ...common, ...simulationOf(driven, common) };
   throw new FilterError('model', `bundle: expected the tensors of its kind, "${kind}", got none; fit the bundle again`);
 }
 
@@ -55,6 +73,24 @@ function commonOf(bundle: Bundle): Omit<CommonModel, 'order'> {
     rejectSd: bundle.guard.rejectSd,
     rejectMaxTicks: bundle.guard.maxTicks,
     warmupTicks: bundle.warmupTicks,
+    ...(bundle.response === undefined ? {} : { response: responseOf(bundle.response) }),
+    ...(bundle.round === undefined
+      ? {}
+      : { round: { ticks: bundle.round.ticks, weight: Float64Array.from(bundle.round.weight) } }),
+  };
+}
+
+/** The response to plans. */
+function responseOf(response: ResponseTensors): ResponseModel {
+  return {
+    inputs: Int32Array.from(response.inputs),
+    decays: Float64Array.from(response.decays),
+    delay: Int32Array.from(response.delay),
+    gain: dequantise(response.gain),
+    looks: Int32Array.from(response.looks),
+    readout: dequantise(response.readout),
+    basis: dequantise(response.basis),
+    surprise: Float64Array.from(response.surprise),
   };
 }
 
@@ -75,6 +111,22 @@ function bankOf(linear: LinearTensors): Omit<BankModel, Exclude<keyof CommonMode
     readout: dequantise(linear.readout),
     ...(linear.own === undefined ? {} : { own: dequantise(linear.own) }),
     horizonBasis: dequantise(linear.horizonBasis),
+  };
+}
+
+/** The recursion and its read-out. */
+function recursionOf(dense: DenseTensors): Omit<DenseModel, 'kind' | Exclude<keyof CommonModel, 'order'>> {
+  return {
+    order: dense.poles.cols,
+    basisCount: dense.horizonBasis.cols,
+    pairCount: dense.pairs,
+    poles: dequantise(dense.poles),
+    drive: dequantise(dense.drive),
+    ...(dense.level === true ? { hasLevel: true } : {}),
+    readout: dequantise(dense.readout),
+    horizonBasis: dequantise(dense.horizonBasis),
+    lags: Int32Array.from(dense.lags ?? []),
+    lagged: dense.lagged === undefined ? new Float64Array(0) : dequantise(dense.lagged),
   };
 }
 

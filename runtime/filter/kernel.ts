@@ -20,7 +20,8 @@ export interface MemoryLayout {
 }
 
 /**
- * The operations of one kind. Only + − × ÷ √ on float64 and integer operations, in a fixed order; nothing allocates but
+ * The operations of one kind. What a kernel takes for the value of a channel is `state.rest`, which is the value folded in less
+ * the round (round.ts); where a kind's models never have a round, `state.value` is the same. Only + − × ÷ √ on float64 and integer operations, in a fixed order; nothing allocates but
  * createCore.
  *
  * shapes  nc channels, ny signals, nu = nc − ny inputs, H horizon
@@ -40,11 +41,11 @@ export interface Kernel<M extends CommonModel, C extends Core> {
   copyOut(model: M, core: C, channel: number, out: Float64Array, at: number): void;
   /** The way back. */
   copyIn(model: M, core: C, channel: number, from: Float64Array, at: number): void;
-  /** Once a tick, before any channel: `state.value` still holds the values of the tick before; not at the first tick. */
+  /** Once a tick, before any channel: `state.rest` still holds the values of the tick before; not at the first tick. */
   beforeTick(model: M, core: C, state: FilterState): void;
-  /** First reading of a channel: its memories as if its past always had been `state.value[channel]`. */
+  /** First reading of a channel: its memories as if its past always had been `state.rest[channel]`. */
   settle(model: M, core: C, state: FilterState, channel: number): void;
-  /** Moves a channel's memories on with `state.value[channel]`, instead of `settle` at all later ticks. */
+  /** Moves a channel's memories on with `state.rest[channel]`, instead of `settle` at all later ticks. */
   advance(model: M, core: C, state: FilterState, channel: number): void;
   /** Once a tick after all channels, and after a restore (`state.tick` ≥ 0): everything that follows from the memories. */
   refresh(model: M, core: C, state: FilterState): void;

@@ -62,7 +62,7 @@ export function createLinearCore(model: BankModel): LinearCore {
 function pushRing(model: BankModel, core: LinearCore, state: FilterState): void {
   const length = core.bank.ringLength;
   if (length === 0) return;
-  for (let c = 0; c < model.channelCount; c++) core.ring[c * length + core.ringAt] = state.value[c];
+  for (let c = 0; c < model.channelCount; c++) core.ring[c * length + core.ringAt] = state.rest[c];
   core.ringAt = core.ringAt + 1 === length ? 0 : core.ringAt + 1;
 }
 
@@ -75,7 +75,7 @@ function pushRing(model: BankModel, core: LinearCore, state: FilterState): void 
 function refreshLinear(model: BankModel, core: LinearCore, state: FilterState): void {
   const { bank, memory, ring, ringAt, features } = core;
   for (let c = 0; c < model.channelCount; c++) {
-    writeFeatures(model, bank, memory, ring, ringAt, state.value, c, features);
+    writeFeatures(model, bank, memory, ring, ringAt, state.rest, c, features);
   }
   multiply(model.bottleneck, model.order, features.length, features, 0, core.x, 0);
   multiply(model.readout, core.coefficients.length, model.order, core.x, 0, core.coefficients, 0);
@@ -114,7 +114,7 @@ function linearPaths(
   for (let i = 0; i < model.signalCount; i++) {
     const at = i * steps;
     multiply(model.horizonBasis, steps, r, core.coefficients, i * r, out, at);
-    const now = state.value[i];
+    const now = state.rest[i];
     for (let h = 0; h < steps; h++) out[at + h] = now + out[at + h];
   }
 }
@@ -212,8 +212,8 @@ export const linearKernel: Kernel<LinearModel, LinearCore> = {
   copyOut,
   copyIn,
   beforeTick: pushRing,
-  settle: (_model, core, state, channel) => settleChannel(core.bank, core.memory, core.ring, state.value, channel),
-  advance: (model, core, state, channel) => advanceChannel(model, core.bank, core.memory, state.value, channel),
+  settle: (_model, core, state, channel) => settleChannel(core.bank, core.memory, core.ring, state.rest, channel),
+  advance: (model, core, state, channel) => advanceChannel(model, core.bank, core.memory, state.rest, channel),
   refresh: refreshLinear,
   paths: linearPaths,
 };

@@ -2,6 +2,11 @@
  * The immutable model, ready to compute with: dequantised once, shared by any number of states. What every kind has stands
  * in `CommonModel`; what a kind adds stands in its own interface, and its kernel (kernel.ts) alone reads that.
  */
+import type { DrivenModel } from './driven-model.ts';
+import type { FeaturedModel } from './featured-model.ts';
+import type { ResponseModel } from './response.ts';
+import type { Round } from './round.ts';
+import type { SwitchedModel } from './switched-model.ts';
 
 /**
  * What every kind of model has: channels, scaling, clips, season, bounds and guard.
@@ -44,6 +49,10 @@ export interface CommonModel {
   readonly rejectSd: number;
   readonly rejectMaxTicks: number;
   readonly warmupTicks: number;
+  /** What a plan of the inputs adds; absent: nothing, or the kind takes plans itself. */
+  readonly response?: ResponseModel;
+  /** What a round ago is taken away before the kernel sees a value; absent: nothing. */
+  readonly round?: Round;
 }
 
 /**
@@ -81,5 +90,32 @@ export interface LinearModel extends BankModel {
   readonly kind: 'linear';
 }
 
+/**
+ * The dense kind: a recursion of few numbers on the changes of all channels, kept by its poles.
+ *
+ * shapes  as CommonModel; r basis
+ * units   everything standardised unless said otherwise
+ */
+export interface DenseModel extends CommonModel {
+  readonly kind: 'dense';
+  readonly basisCount: number;
+  /** Complex poles, each of two numbers of the state, before the real ones. */
+  readonly pairCount: number;
+  /** (d) re, im of each pair, then the real poles. */
+  readonly poles: Float64Array;
+  /** (d × nc) */
+  readonly drive: Float64Array;
+  /** The read-out also sees every channel's level, the mean less the value; absent: it does not. */
+  readonly hasLevel?: boolean;
+  /** (ny·r × d), or d + nc with the level; row i·r + k */
+  readonly readout: Float64Array;
+  /** (H × r) */
+  readonly horizonBasis: Float64Array;
+  /** Ascending, ticks. */
+  readonly lags: Int32Array;
+  /** (ny·S × lags), row i·S + h − 1: what z(t − lag) − z(t) of signal i adds to its step h. */
+  readonly lagged: Float64Array;
+}
+
 /** Every kind there is; code outside the kernels uses the fields of CommonModel alone. */
-export type Model = LinearModel;
+export type Model = LinearModel | DenseModel | FeaturedModel | SwitchedModel | DrivenModel;

@@ -10,7 +10,8 @@
  * | 8  | 4 | CRC-32 of the model's shapes, poles, lags and scaling: another model refuses the snapshot |
  * | 12 | 8 | tick, float64 |
  * | 20 | … | state: per channel started u8, passed u16, age u32, then float64 value and what the kind keeps of the channel |
- * |    |   | (linear: memories, ring oldest first), and after the channels what it keeps of no channel alone |
+ * |    |   | (linear: memories, ring oldest first), and after the channels what it keeps of no channel alone; then the |
+ * |    |   | last round of every signal that has one, oldest first |
  * |    |   | bounds: warmed u32, radius and, unless tracked as in the first bundles, stretch float64 (ny × scored steps each), |
  * |    |   | forecasts under way float32 as `Bounds.issued` |
  * | end − 4 | 4 | CRC-32 of all before |
@@ -21,6 +22,7 @@ import { FilterError } from './errors.ts';
 import { type Bounds, createBounds } from './interval.ts';
 import { kernelOf } from './kernels.ts';
 import type { Model } from './model.ts';
+import { restOf } from './round.ts';
 import { createState, type FilterState, fadeTicks } from './state.ts';
 import { LEAST_STRETCH, MOST_STRETCH, spreadRadii } from './tracking.ts';
 
@@ -29,10 +31,26 @@ const HEAD = 20;
 const STATE_MAGIC = 0x53576673;
 const BOUNDS_MAGIC = 0x53576662;
 
+/** Numbers of the rounds: W + 1 for each signal that has one. */
+function roundCount({ round }: Model): number {
+  if (round === undefined) return 0;
+  return (round.ticks + 1) * round.weight.filter((weight) => weight !== 0).length;
+}
+
+/** Visits every number of the rounds, oldest first, so that equal states give equal bytes. */
+function eachOfRounds({ round }: Model, state: FilterState, visit: (slot: number) => void): void {
+  if (round === undefined) return;
+  const length = round.ticks + 1;
+  for (let i = 0; i < round.weight.length; i++) {
+    if (round.weight[i] === 0) continue;
+    for (let k = 1; k <= length; k++) visit(i * length + ((state.tick + k + length) % length));
+  }
+}
+
 /** Bytes of a state's snapshot. */
 function stateSize(model: Model): number {
   const { perChannel, shared } = kernelOf(model).memoryLayout(model);
-  return HEAD + model.channelCount * (7 + 8 * (1 + perChannel)) + 8 * shared + 4;
+  return HEAD + model.channelCount * (7 + 8 * (1 + perChannel)) + 8 * (shared + roundCount(model)) + 4;
 }
 
 /**
@@ -57,6 +75,10 @@ export function saveState(model: Model, state: FilterState): Uint8Array {
   }
   kernel.copyOut(model, state.core, -1, numbers, 0);
   at = putFloats(view, at, numbers, 0, shared);
+  eachOfRounds(model, state, (slot) => {
+    view.setFloat64(at, state.roundMemory[slot], true);
+    at += 8;
+  });
   view.setUint32(at, crc32(bytes, 0, at), true);
   return bytes;
 }
@@ -89,10 +111,20 @@ export function restoreState(model: Model, bytes: Uint8Array): FilterState {
     areFinite &&= Number.isFinite(state.value[c]) && allFinite(perChannel);
     kernel.copyIn(model, state.core, c, numbers, 0);
   }
-  getFloats(view, at, numbers, 0, shared);
+  at = getFloats(view, at, numbers, 0, shared);
   areFinite &&= allFinite(shared);
+  eachOfRounds(model, state, (slot) => {
+    state.roundMemory[slot] = view.getFloat64(at, true);
+    areFinite &&= Number.isFinite(state.roundMemory[slot]);
+    at += 8;
+  });
   if (!areFinite) throw refusal('state', 'memories', 'finite numbers', 'NaN or infinity');
   kernel.copyIn(model, state.core, -1, numbers, 0);
+  if (model.round !== undefined) {
+    for (let c = 0; c < model.channelCount; c++) {
+      state.rest[c] = c < model.signalCount ? restOf(model.round, state, c, state.tick) : state.value[c];
+    }
+  }
   if (state.tick >= 0) kernel.refresh(model, state.core, state);
   return state;
 }
@@ -190,6 +222,7 @@ function fingerprint(model: Model): number {
   const parts = [
     Float64Array.of(model.channelCount, model.signalCount, model.horizon, model.rejectMaxTicks, model.tickMs),
     ...kernelOf(model).fingerprint(model),
+    ...(model.round === undefined ? [] : [Float64Array.of(model.round.ticks), model.round.weight]),
     model.mean,
     model.scale,
   ];

@@ -7,6 +7,7 @@ import type { Core } from './kernel.ts';
 import { kernelOf } from './kernels.ts';
 import type { CommonModel, Model } from './model.ts';
 import { createResponseBuffers, type ResponseBuffers } from './response.ts';
+import { createRoundMemory } from './round.ts';
 
 /** Values of `observed`: no reading at the tick. */
 export const MISSING = 0;
@@ -37,6 +38,10 @@ export interface FilterState {
   tick: number;
   /** (nc) value folded in last: the reading, or what stood in for it. */
   readonly value: Float64Array;
+  /** (nc) what the kernel sees of it: less the round; the same array where the model has none. */
+  readonly rest: Float64Array;
+  /** (ny × (W + 1)) values of the last round, see round.ts; empty without one. */
+  readonly roundMemory: Float64Array;
   /** (nc) one-step forecast that the last tick was held against. */
   readonly predicted: Float64Array;
   /** (nc) reading of the last tick, clipped; NaN where missing. */
@@ -72,9 +77,12 @@ export function createState(model: Model): FilterState {
   const core = kernelOf(model).createCore(model);
   const standardised = (values: Float64Array): Float64Array =>
     values.map((v, c) => (v - model.mean[c]) / model.scale[c]);
+  const value = new Float64Array(nc);
   return {
     tick: -1,
-    value: new Float64Array(nc),
+    value,
+    rest: model.round === undefined ? value : new Float64Array(nc),
+    roundMemory: createRoundMemory(model),
     predicted: new Float64Array(nc),
     reading: new Float64Array(nc).fill(Number.NaN),
     innovation: new Float64Array(nc).fill(Number.NaN),

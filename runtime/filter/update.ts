@@ -7,6 +7,7 @@ import { FilterError } from './errors.ts';
 import { predictStandardised } from './forecast.ts';
 import { kernelOf } from './kernels.ts';
 import type { CommonModel, Model } from './model.ts';
+import { advanceRound, settleRound } from './round.ts';
 import { type FilterState, FOLDED, fadeTicks, MISSING, PASSED_OVER } from './state.ts';
 
 /**
@@ -32,14 +33,14 @@ export function update(model: Model, state: FilterState, tick: number, readings:
   if (state.tick >= 0) kernel.beforeTick(model, state.core, state);
   for (let c = 0; c < model.channelCount; c++) {
     // y − y is 0 for finite y alone.
-    if (readings[c] - readings[c] !== 0) missed(model, state, c);
-    else observe(model, state, c, readings);
+    if (readings[c] - readings[c] !== 0) missed(model, state, c, tick);
+    else observe(model, state, c, tick, readings);
   }
   state.tick = tick;
   kernel.refresh(model, state.core, state);
 }
 
-function observe(model: Model, state: FilterState, c: number, readings: Float64Array): void {
+function observe(model: Model, state: FilterState, c: number, tick: number, readings: Float64Array): void {
   const y = Math.min(model.clipHigh[c], Math.max(model.clipLow[c], readings[c]));
   const z = Math.min(state.high[c], Math.max(state.low[c], (y - model.mean[c]) / model.scale[c]));
   state.reading[c] = z;
@@ -48,19 +49,18 @@ function observe(model: Model, state: FilterState, c: number, readings: Float64A
   if (isFar && state.passed[c] < model.rejectMaxTicks) {
     state.passed[c]++;
     state.observed[c] = PASSED_OVER;
-    replace(model, state, c);
+    replace(model, state, c, tick);
     return;
   }
   state.observed[c] = FOLDED;
   state.age[c] = 0;
   if (!isFar && state.passed[c] > 0) state.passed[c]--;
   state.value[c] = z;
-  if (state.started[c] === 1) {
-    kernelOf(model).advance(model, state.core, state, c);
-  } else {
-    state.started[c] = 1;
-    kernelOf(model).settle(model, state.core, state, c);
-  }
+  const isFirst = state.started[c] === 0;
+  state.started[c] = 1;
+  takeRound(model, state, c, tick, isFirst);
+  if (isFirst) kernelOf(model).settle(model, state.core, state, c);
+  else kernelOf(model).advance(model, state.core, state, c);
 }
 
 function isFarOff(model: CommonModel, state: FilterState, c: number): boolean {
@@ -69,18 +69,31 @@ function isFarOff(model: CommonModel, state: FilterState, c: number): boolean {
   return Math.abs(state.innovation[c]) > limit;
 }
 
-function missed(model: Model, state: FilterState, c: number): void {
+function missed(model: Model, state: FilterState, c: number, tick: number): void {
   state.reading[c] = Number.NaN;
   state.innovation[c] = Number.NaN;
   state.observed[c] = MISSING;
-  replace(model, state, c);
+  replace(model, state, c, tick);
 }
 
 /** Folds the one-step forecast in, in the place of a reading. */
-function replace(model: Model, state: FilterState, c: number): void {
+function replace(model: Model, state: FilterState, c: number, tick: number): void {
   if (state.age[c] < 2 * fadeTicks(model)) state.age[c]++;
   state.value[c] = state.predicted[c];
+  takeRound(model, state, c, tick, false);
   kernelOf(model).advance(model, state.core, state, c);
+}
+
+/** Works out what the kernel sees of a value, where that is not the value itself. */
+function takeRound(model: Model, state: FilterState, c: number, tick: number, isFirst: boolean): void {
+  const { round } = model;
+  if (round === undefined) return;
+  if (c >= model.signalCount) {
+    state.rest[c] = state.value[c];
+    return;
+  }
+  if (isFirst) settleRound(round, state.roundMemory, c, state.value[c]);
+  advanceRound(round, state, c, tick);
 }
 
 function checkTurn(model: CommonModel, state: FilterState, tick: number, readings: Float64Array): void {
