@@ -108,7 +108,8 @@ export function crossingTable(pairs: readonly CrossingPair[], worth: number): Fl
     }
   }
   return rising(
-    came.map((sum, k) => sum / weight[k]),
+    // Such a lean can carry a knot past what a chance can be.
+    came.map((sum, k) => Math.min(1, Math.max(0, sum / weight[k]))),
     weight,
   );
 }
