@@ -41,6 +41,7 @@ export function bundleFacts({ bundle, document, digest, model }: OpenDocument) {
       rivals: judge.rivals,
       signals: judgeRows(bundle),
     },
+    plans: planRows(bundle),
     provenance: {
       history: hex(from.historyDigest),
       survey: hex(from.surveyDigest),
@@ -75,10 +76,49 @@ export function bundleText(facts: BundleFacts): string {
     '',
     judgeText(facts),
     '',
+    ...(facts.plans.length === 0 ? [] : [plansText(facts), '']),
     provenanceText(facts),
     '',
     sizeText(facts),
   ].join('\n');
+}
+
+/** What a lasting change of each planned input by one brings to each signal in the end of the horizon, in their units. */
+function planRows(bundle: Bundle) {
+  const { response, channels, horizon, tickMs } = bundle;
+  if (response === undefined) return [];
+  const signals = channels.filter(({ role }) => role === 'signal');
+  const gain = dequantise(response.gain);
+  const filters = response.decays.length + 2;
+  const np = response.inputs.length;
+  return response.inputs.flatMap((u, p) => {
+    const input = channels[signals.length + u];
+    return signals.map((signal, i) => {
+      const steps = horizon - response.delay[i * np + p];
+      const at = (i * np + p) * filters;
+      const poles = response.decays.reduce((sum, a, b) => sum + gain[at + 1 + b] * (1 - a ** steps), 0);
+      const lasting = gain[at] + poles + (gain[at + filters - 1] * steps) / horizon;
+      return {
+        input: input.name,
+        signal: signal.name,
+        deadTimeMs: response.delay[i * np + p] * tickMs,
+        effectPerUnit: (lasting * signal.scale) / input.scale,
+        usualError: response.surprise[p] * input.scale,
+      };
+    });
+  });
+}
+
+function plansText(facts: BundleFacts): string {
+  const head = ['plan of', 'changes', 'after', 'by, for one more up to the horizon', 'usual error without a plan'];
+  const rows = facts.plans.map(({ input, signal, deadTimeMs, effectPerUnit, usualError }) => [
+    input,
+    signal,
+    spanText(deadTimeMs),
+    shortNumber(effectPerUnit, 3),
+    shortNumber(usualError, 3),
+  ]);
+  return textTable(head, rows, [2, 3, 4]);
 }
 
 function channelTable(facts: BundleFacts): string {
@@ -167,6 +207,7 @@ function partSizes(bundle: Bundle): Record<string, number> {
       ? {}
       : { bottleneck: linear.bottleneck, 'read-out': linear.readout, 'horizon shapes': linear.horizonBasis }),
     ...(linear?.own === undefined ? {} : { 'own part': linear.own }),
+    ...(bundle.response === undefined ? {} : { plans: bundle.response }),
     bounds: bundle.bounds,
     seasonal: bundle.seasonal,
     channels: bundle.channels,

@@ -2,6 +2,7 @@
 import { describe, expect, test } from 'vitest';
 import { decodeBundle } from '../../../protocol/index.ts';
 import { createState, forecastPath, type Model, update } from '../../../runtime/filter/index.ts';
+import { bundleFacts } from '../../../trainer/describe-bundle.ts';
 import { fitSummary } from '../../../trainer/fit-summary.ts';
 import { FIT_DEFAULTS, fit as fitHistory } from '../../../trainer/pipeline.ts';
 import {
@@ -62,6 +63,10 @@ describe('a plan of an input that matters', () => {
     expect(response!.inputs).toEqual([0]);
     expect(response!.surprise[0]).toBeGreaterThan(0.3);
     expect(fitted.document.length).toBeLessThan(options.maxBytes);
+    const { document, bundle, model } = fitted;
+    const facts = bundleFacts({ document, bundle, model, digest: new Uint8Array(32) });
+    expect(facts.plans).toMatchObject([{ input: 'valve', signal: 'outlet' }]);
+    expect(Math.abs(facts.plans[0]!.effectPerUnit - stepResponse(HORIZON))).toBeLessThan(0.05 * GAIN);
   });
 
   test('a site file without a plan topic has no such section, and the same forecasts without a plan', async () => {
