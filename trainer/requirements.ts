@@ -4,6 +4,9 @@
 import type { Site } from '@stillwell/protocol';
 import { TrainError } from './errors.ts';
 import { ticksLeft } from './exclusions.ts';
+import { suggestTick } from './history/cadence.ts';
+import { lengthOf } from './history/finding.ts';
+import { quantiles } from './history/order-statistics.ts';
 import type { Series } from './history/series.ts';
 import type { TickSpan } from './span.ts';
 
@@ -85,6 +88,7 @@ export function splitHistory(series: Series, site: Site, asked: Asked): Split {
   const from = series.firstTick;
   const learnEnd = from + Math.round(asked.learnShare * series.ticks);
   const calibrateEnd = learnEnd + Math.round(asked.calibrateShare * series.ticks);
+  refuseSparse(series);
   const split = {
     learn: { fromTick: from, toTick: learnEnd },
     calibrate: { fromTick: learnEnd, toTick: calibrateEnd },
@@ -94,6 +98,28 @@ export function splitHistory(series: Series, site: Site, asked: Asked): Split {
   refuseExcluded(series, split.calibrate, 'calibrate by', least(LEAST_OTHER));
   refuseExcluded(series, split.judged, 'judge by', least(LEAST_OTHER));
   return split;
+}
+
+/** Usual ticks from one with a reading to the next; from here on a model would learn its own bridges between them. */
+const MOST_APART = 20;
+
+/** A tick that is far too fine for any signal, told by the ticks between readings, which long gaps do not change. */
+function refuseSparse(series: Series): void {
+  const apart: number[] = [];
+  let last = -1;
+  for (let t = 0; t < series.ticks; t++) {
+    if (!series.values.some((y) => !Number.isNaN(y[t]))) continue;
+    if (last >= 0) apart.push(t - last);
+    last = t;
+  }
+  const [usual] = quantiles(Float64Array.from(apart), [0.5]) as [number];
+  if (!(usual >= MOST_APART)) return;
+  throw new TrainError(
+    'history',
+    `Readings come usually ${usual} ticks of ${lengthOf(series.tickMs)} apart; expected a reading in one of ${MOST_APART} ticks at least. ` +
+      `Take a tick of ${lengthOf(suggestTick([usual * series.tickMs]))} in the site file, and as many fewer ticks for the horizon.`,
+    { details: { usual } },
+  );
 }
 
 /** Too much excluded is like too short a history, but mended elsewhere. */
