@@ -49,7 +49,7 @@ const WORSE_RATIO = 1.05;
 /** Trial and probation watch this many horizons. */
 const GATE_HORIZONS = 4;
 /** Characters of a verdict beside the signal's name, at most. */
-const LONGEST_VERDICT = 114;
+const LONGEST_VERDICT = 140;
 const EMPTY_DIGEST = new Uint8Array(32);
 
 /**

@@ -1,5 +1,6 @@
 /** What a fit came to, in a few lines for a terminal. */
 import { skillScore } from './judge/scores.ts';
+import { blockText, crossingText } from './judge/words.ts';
 import type { FitResult } from './pipeline.ts';
 import { planWorthText } from './plans.ts';
 import { bytesText, textTable } from './text-table.ts';
@@ -32,13 +33,23 @@ export function fitSummary(result: FitResult): string {
     '',
     ...verdicts.signals.map((verdict) => `  ${verdict.sentence}`),
     '',
+    ...[blockText(verdicts), crossingText(hindcast)].filter((text) => text !== ''),
     ...(result.planWorth === null ? [] : [planWorthText(result.planWorth)]),
     verdicts.sentence,
     `Bundle ${bytesText(result.document.length)}: ${chosen.kind} kind, ${chosen.name}; ` +
       `rounding cost ${rounding} of the squared error.`,
+    guardText(result),
     ...result.warnings.map((warning) => `Note: ${warning}`),
     '',
   ].join('\n');
+}
+
+/** What the guard against wild readings did on sound ones. */
+function guardText({ calibration }: FitResult): string {
+  const { rejectSd, passedOver = 0, guardCost = 0 } = calibration;
+  const beyond = `Readings more than ${rejectSd.toFixed(0)} robust standard deviations from their forecast are passed over`;
+  if (passedOver === 0) return `${beyond}; in the calibration part there was none.`;
+  return `${beyond}: ${passedOver} in the calibration part, which changed the squared error there by ${(100 * guardCost).toFixed(2)} % at most.`;
 }
 
 /** Skill of a signal over all steps against one rival; NaN where that rival could not be made. */

@@ -12,7 +12,7 @@ import { type Prepared, prepareHistory } from './identify/prepare.ts';
 import { responseRoom } from './identify/response.ts';
 import { type Taught, teach } from './identify/teach.ts';
 import { calibrate } from './judge/calibrate.ts';
-import { declaredLimits } from './judge/crossings.ts';
+import { type AskedLimit, declaredLimits } from './judge/crossings.ts';
 import { judge, type Verdicts, verdictSteps } from './judge/gate.ts';
 import { type Hindcast, hindcast } from './judge/hindcast.ts';
 import { type PlanWorth, planWorth } from './judge/plan-worth.ts';
@@ -22,7 +22,7 @@ import { type KindSections, withCalibration } from './kinds/candidate.ts';
 import { chooseKind, type KindChoice, type Tried } from './kinds/choose-kind.ts';
 import { learnPlans, type Plans, plannedInputs } from './plans.ts';
 import { type Audit, checkAtRest, replayError } from './quantise/audit.ts';
-import { openCalibration, type Surroundings } from './quantise/float-model.ts';
+import { type Calibration, openCalibration, type Surroundings } from './quantise/float-model.ts';
 import { checkOptions, type Split, splitHistory } from './requirements.ts';
 import type { TickSpan } from './span.ts';
 
@@ -61,6 +61,8 @@ export interface FitResult {
   /** The rounded model on the judged part. */
   readonly hindcast: Hindcast;
   readonly audit: Audit;
+  /** Bounds, guard and crossing as first set. */
+  readonly calibration: Calibration;
   readonly verdicts: Verdicts;
   readonly chosen: Chosen;
   /** What losing each channel costs; null where there is too little judged time, or too many channels. */
@@ -79,7 +81,7 @@ const SIGNED_BYTES = 56 + MAX_SIGNATURES * 72;
 /** Step of the gateway's quantile tracker; measured to hold weekly coverage on real records. */
 const BOUNDS_RATE = 0.05;
 /** Rivals a hindcast has at most; their names and skills take bytes. */
-const MOST_RIVALS = 4;
+const MOST_RIVALS = 6;
 
 /**
  * Fits a site's history.
@@ -98,7 +100,12 @@ export async function fit(input: FitInput, options: FitOptions): Promise<FitResu
   const small = shrink(input, options, split, prepared, taught);
   clock.lap('judging');
   const units = [...input.site.signals, ...input.site.inputs].map((signal) => signal.unit);
-  const cast = hindcast(modelFromBundle(small.bundle), input.series, { ...split.judged, learn: split.learn }, units);
+  const cast = hindcast(
+    modelFromBundle(small.bundle),
+    input.series,
+    { ...split.judged, learn: split.learn, limits: siteLimits(input.site) },
+    units,
+  );
   const verdicts = judge(cast);
   const audit = auditRounding(small, cast, input.series, split);
   clock.lap('finding what plans are worth');
@@ -121,6 +128,7 @@ export async function fit(input: FitInput, options: FitOptions): Promise<FitResu
     ...split,
     hindcast: cast,
     audit,
+    calibration: small.parts.calibration,
     verdicts,
     chosen: chosenOf(small.choice, prepared, taught),
     reliance: rest,
@@ -168,16 +176,14 @@ function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Pr
   const { candidate } = choice;
   const plans = learnPlans(candidate, prepared, split.calibrate.toTick - series.firstTick, planned);
   const span = indices(split.calibrate, series);
-  const calibration = calibrate(
-    candidate.rounded,
-    prepared.calm,
-    span,
-    options.coverage,
-    declaredLimits(site.signals.map((signal) => signal.limits)),
-  );
+  const calibration = calibrate(candidate.rounded, prepared.calm, span, options.coverage, siteLimits(site));
   const parts = { ...partsOf(candidate.sections, candidate.settled), calibration, response: plans.response?.tensors };
   const bundle = composeBundle(parts);
   return { choice, bundle, parts, plans, float: withCalibration(candidate.float, calibration) };
+}
+
+function siteLimits(site: FitInput['site']): AskedLimit[] {
+  return declaredLimits(site.signals.map((signal) => signal.limits));
 }
 
 function auditRounding(small: Small, cast: Hindcast, series: Series, split: Split): Audit {

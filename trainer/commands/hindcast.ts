@@ -9,11 +9,13 @@ import { asTheGateway } from '../history/plausible.ts';
 import { readHistory } from '../history/read.ts';
 import type { Series } from '../history/series.ts';
 import { layOnTicks } from '../history/ticks.ts';
-import { verdictSteps } from '../judge/gate.ts';
+import { declaredLimits } from '../judge/crossings.ts';
+import { judge, verdictSteps } from '../judge/gate.ts';
 import { type Hindcast, hindcast } from '../judge/hindcast.ts';
 import { hindcastJson } from '../judge/hindcast-json.ts';
 import { planWorth, planWorthJson } from '../judge/plan-worth.ts';
 import { meanOf, skillScore } from '../judge/scores.ts';
+import { blockText, crossingText, worstText } from '../judge/words.ts';
 import { learnedSpans } from '../learned-spans.ts';
 import { several } from '../option-values.ts';
 import { plannedInputs, planWorthText } from '../plans.ts';
@@ -87,7 +89,8 @@ async function run(options: HindcastOptions): Promise<void> {
   const span = judgedSpan(series, bundle, fromTick, fromMs !== undefined);
   refuseUnread(series, span, options.history);
   const units = bundle.channels.map((channel) => channel.unit);
-  const cast = hindcast(model, series, { ...span, learn: learned.learn }, units);
+  const limits = declaredLimits(site.signals.map((signal) => signal.limits));
+  const cast = hindcast(model, series, { ...span, learn: learned.learn, limits }, units);
   const judged = { fromTick: span.fromTick - series.firstTick, toTick: span.toTick - series.firstTick };
   const worth = planWorth(model, series, judged, plannedInputs(site));
   const seenShare = Math.max(0, Math.min(1, (learned.seenTo - span.fromTick) / (span.toTick - span.fromTick)));
@@ -100,8 +103,17 @@ async function run(options: HindcastOptions): Promise<void> {
   process.stdout.write(
     options.json
       ? `${JSON.stringify({ ...head, ...hindcastJson(cast), ...planWorthJson(worth) }, null, 2)}\n`
-      : `${tableText(cast)}\n${planWorthText(worth)}${seenText(seenShare)}${notesText(series)}\n${ADVISORY}\n`,
+      : `${tableText(cast)}\n\n${judgedText(cast)}\n${planWorthText(worth)}${seenText(seenShare)}${notesText(series)}\n${ADVISORY}\n`,
   );
+}
+
+/** Worst times first: where the forecasts fail is what a person wants to look at. */
+function judgedText(cast: Hindcast): string {
+  const verdicts = judge(cast);
+  const sentences = verdicts.signals.map((verdict) => `  ${verdict.sentence}`).join('\n');
+  return [worstText(cast), sentences, blockText(verdicts), crossingText(cast), verdicts.sentence, '']
+    .filter((text, k) => text !== '' || k === 5)
+    .join('\n\n');
 }
 
 function notesText(series: Series): string {

@@ -9,11 +9,12 @@ import type { Model } from '@stillwell/runtime/filter';
 import { withoutExcluded } from '../exclusions.ts';
 import type { Series } from '../history/series.ts';
 import type { TickSpan } from '../span.ts';
-import { Coverage } from './coverage.ts';
+import { type AskedLimit, Crossings, usualLimits } from './crossings.ts';
 import { type PlanTrial, plannerOf } from './plan-trial.ts';
-import { type Moment, replay } from './replay.ts';
-import { carryForward, makeRivals, type Rival } from './rivals.ts';
-import { Scores } from './scores.ts';
+import { type Reliability, reliabilityOf } from './reliability.ts';
+import { replay } from './replay.ts';
+import { carryForward, makeRivals } from './rivals.ts';
+import { Tally } from './tally.ts';
 
 /**
  * shapes  arrays (ny × H), row-major, entry i·H + h - 1; rival arrays (rivals × ny × H)
@@ -49,6 +50,14 @@ export interface Hindcast {
   readonly paths: readonly HindcastPath[];
   /** (ny) of (ticks): the readings of the held-out part, first at fromMs. */
   readonly readings: readonly Float64Array[];
+  /** (origins) label of each origin. */
+  readonly originMs: Float64Array;
+  /** (ny) of (origins): mean squared error of the whole path from that origin, unit²; NaN where no reading came. */
+  readonly pathLoss: readonly Float64Array[];
+  /** (rivals · ny) of (origins), row r·ny + i: the same of a rival. */
+  readonly rivalPathLoss: readonly Float64Array[];
+  /** Whether crossing probabilities came true as often as they said; null where there was no limit to ask about. */
+  readonly reliability: Reliability | null;
 }
 
 /** One whole path kept for plots: origin and (ny × H) arrays in `unit`. */
@@ -65,12 +74,14 @@ export interface HindcastSpan extends TickSpan {
   readonly learn: TickSpan | null;
   /** Model whose clips the readings are scored under, so that two models are held against the same; the one replayed. */
   readonly clipAs?: Model;
+  /** Limits that the site declares; where there are none, quantiles of the learning part are asked about. */
+  readonly limits?: readonly AskedLimit[];
   /** What the forecasts are told of the future of the planned inputs (counted from the first input); nothing. */
   readonly plan?: { readonly trial: PlanTrial; readonly inputs: readonly number[] };
 }
 
-/** Paths kept for plots: about this many, evenly spread. */
-const KEPT_PATHS = 120;
+/** Origins at which crossing probabilities are asked for, about. */
+const ASKED_ORIGINS = 800;
 
 /**
  * Replays a model over a span and scores it beside the rivals.
@@ -92,137 +103,37 @@ export function hindcast(model: Model, series: Series, span: HindcastSpan, units
   const seen = series.values.slice(0, ny).map((y, i) => clipped(y, clipLow[i], clipHigh[i]));
   const readings = withoutExcluded({ ...series, values: seen }).values;
   const carry = (y: Float64Array, i: number): Float64Array => carryForward(y, model.mean[i]);
+  const learn = within(span.learn, series);
   const rivals = makeRivals({
     carried: seen.map(carry),
     taught: readings.map(carry),
     horizon: H,
     periodTicks: model.seasonalPeriod,
-    learn: within(span.learn, series),
+    tickMs: series.tickMs,
+    knownTicks: from,
+    learn,
   });
   const tally = new Tally(ny, H, from, to, rivals, readings);
   const { trial, inputs } = span.plan ?? { trial: 'none', inputs: [] };
   const planner = plannerOf(trial, model, series, { fromTick: from, toTick: to }, inputs);
-  replay(model, series, { fromTick: from - 1, toTick: to }, (moment) => tally.visit(moment, series), planner);
-  return tally.result(model, series, units);
-}
-
-/** Largest divisor of the horizon up to `wanted`, so that kept paths can be laid end to end without a hole. */
-function strideOfPaths(horizon: number, wanted: number): number {
-  let stride = Math.max(1, Math.min(horizon, wanted));
-  while (horizon % stride !== 0) stride--;
-  return stride;
-}
-
-class Tally {
-  readonly #ny: number;
-  readonly #horizon: number;
-  readonly #from: number;
-  readonly #to: number;
-  readonly #rivals: readonly Rival[];
-  readonly #readings: readonly Float64Array[];
-  readonly #own: Scores;
-  readonly #theirs: readonly Scores[];
-  readonly #coverage: Coverage;
-  readonly #residuals: readonly Float64Array[];
-  /** (ny) one-step forecast made at the tick before, in the signals' units. */
-  readonly #next: Float64Array;
-  readonly #path: Float64Array;
-  readonly #every: number;
-  readonly #paths: HindcastPath[] = [];
-  #origins = 0;
-
-  constructor(
-    ny: number,
-    horizon: number,
-    from: number,
-    to: number,
-    rivals: readonly Rival[],
-    readings: readonly Float64Array[],
-  ) {
-    this.#ny = ny;
-    this.#horizon = horizon;
-    this.#from = from;
-    this.#to = to;
-    this.#rivals = rivals;
-    this.#readings = readings;
-    this.#own = new Scores(ny * horizon);
-    this.#theirs = rivals.map(() => new Scores(ny * horizon));
-    this.#coverage = new Coverage(ny * horizon);
-    this.#residuals = readings.map(() => new Float64Array(to - from).fill(Number.NaN));
-    this.#next = new Float64Array(ny).fill(Number.NaN);
-    this.#path = new Float64Array(horizon);
-    this.#every = strideOfPaths(horizon, Math.floor((to - from - horizon + 1) / KEPT_PATHS));
-  }
-
-  visit(moment: Moment, series: Series): void {
-    const { at, median } = moment;
-    for (let i = 0; i < this.#ny; i++) {
-      if (at >= this.#from) this.#residuals[i][at - this.#from] = this.#readings[i][at] - this.#next[i];
-      this.#next[i] = median[i * this.#horizon];
-    }
-    if (at + this.#horizon >= this.#to || series.excluded?.isExcluded[at] === 1) return;
-    this.#origins++;
-    for (let i = 0; i < this.#ny; i++) this.#score(i, moment);
-    if ((at - this.#from + 1) % this.#every === 0) {
-      this.#paths.push({
-        originMs: (series.firstTick + at) * series.tickMs,
-        median: median.slice(),
-        lower: moment.lower.slice(),
-        upper: moment.upper.slice(),
-      });
-    }
-  }
-
-  #score(signal: number, { at, median, lower, upper }: Moment): void {
-    const y = this.#readings[signal];
-    const H = this.#horizon;
-    for (let h = 1; h <= H; h++) {
-      const reading = y[at + h];
-      if (Number.isNaN(reading)) continue;
-      const cell = signal * H + h - 1;
-      this.#own.add(cell, median[cell] - reading);
-      this.#coverage.add(cell, reading, lower[cell], upper[cell]);
-    }
-    this.#rivals.forEach((rival, r) => {
-      rival.forecast(signal, at, this.#path);
-      for (let h = 1; h <= H; h++) {
-        const reading = y[at + h];
-        if (!Number.isNaN(reading)) this.#theirs[r].add(signal * H + h - 1, this.#path[h - 1] - reading);
-      }
-    });
-  }
-
-  result(model: Model, series: Series, units: readonly string[]): Hindcast {
-    const H = this.#horizon;
-    const own = this.#own;
-    const perCell = (values: Float64Array, power: number): Float64Array =>
-      values.map((value, cell) => value / model.scale[Math.floor(cell / H)] ** power);
-    return Object.freeze({
-      signals: series.names.slice(0, this.#ny),
-      units: units.slice(0, this.#ny),
-      horizon: H,
-      tickMs: series.tickMs,
-      origins: this.#origins,
-      fromMs: (series.firstTick + this.#from) * series.tickMs,
-      toMs: (series.firstTick + this.#to) * series.tickMs,
-      rivals: this.#rivals.map((rival) => rival.name),
-      count: own.count,
-      mse: own.mse(),
-      mae: own.mae(),
-      bias: own.bias(),
-      mseStandardised: perCell(own.mse(), 2),
-      maeStandardised: perCell(own.mae(), 1),
-      rivalMse: joined(this.#theirs.map((scores) => scores.mse())),
-      rivalMae: joined(this.#theirs.map((scores) => scores.mae())),
-      scale: model.scale.slice(0, this.#ny),
-      nominalCoverage: model.coverage,
-      coverage: this.#coverage.share(),
-      width: this.#coverage.width(),
-      residuals: this.#residuals,
-      paths: this.#paths,
-      readings: this.#readings.map((y) => y.slice(this.#from, this.#to)),
-    });
-  }
+  const { limits = [] } = span;
+  const asked = limits.length > 0 || learn === null ? limits : usualLimits(series, learn);
+  const crossings = new Crossings(model, asked, readings, to);
+  const every = Math.max(1, Math.floor((to - from - H + 1) / ASKED_ORIGINS));
+  replay(
+    model,
+    series,
+    { fromTick: from - 1, toTick: to },
+    (moment) => {
+      tally.visit(moment, series);
+      const isAsked = (moment.at - from + 1) % every === 0 && series.excluded?.isExcluded[moment.at] !== 1;
+      if (isAsked) crossings.visit(moment);
+    },
+    planner,
+  );
+  const isDeclared = limits.length > 0;
+  const reliability = crossings.pairs.length > 0 ? reliabilityOf(crossings.pairs, asked.length, isDeclared) : null;
+  return Object.freeze({ ...tally.result(model, series, units), reliability });
 }
 
 /** NaN stays NaN. */
@@ -236,14 +147,4 @@ function within(span: TickSpan | null, series: Series): TickSpan | null {
   const fromTick = span.fromTick - series.firstTick;
   const toTick = span.toTick - series.firstTick;
   return fromTick >= 0 && toTick <= series.ticks && toTick > fromTick ? { fromTick, toTick } : null;
-}
-
-function joined(parts: readonly Float64Array[]): Float64Array {
-  const out = new Float64Array(parts.reduce((sum, part) => sum + part.length, 0));
-  let at = 0;
-  for (const part of parts) {
-    out.set(part, at);
-    at += part.length;
-  }
-  return out;
 }

@@ -5,6 +5,22 @@
 import type { TickSpan } from '../span.ts';
 import { fitWindowRidge } from './window-ridge.ts';
 
+const DAY_MS = 86_400_000;
+const CALENDAR = [
+  ['daily persistence', DAY_MS],
+  ['weekly persistence', 7 * DAY_MS],
+] as const;
+const PERIODS_HELD = 3;
+
+/** Rivals that anyone would guess; the gate asks for skill over these. The window ridge is reported beside them. */
+export const SIMPLE_RIVALS: readonly string[] = [
+  'persistence',
+  'seasonal persistence',
+  'daily persistence',
+  'weekly persistence',
+  'drift',
+];
+
 /** One rival; forecasts are in the units of the series it was made from. */
 export interface Rival {
   readonly name: string;
@@ -19,14 +35,17 @@ export interface RivalInput {
   /** The same without excluded time: what rivals learn from. */
   readonly taught: readonly Float64Array[];
   readonly horizon: number;
-  /** Ticks in the period; 0: none. */
+  /** Ticks in the period found in the learning part; 0: none. */
   readonly periodTicks: number;
+  readonly tickMs: number;
+  /** Ticks before the first origin: a rival that repeats a day or a week needs some of them. */
+  readonly knownTicks: number;
   /** Indices of the learning part; null where the series does not hold it. */
   readonly learn: TickSpan | null;
 }
 
 /**
- * All rivals that can be made: the last value; the value one period ago; the last value plus the mean change of the
+ * All rivals that can be made: the last value; the value one period ago, one day and one week ago; the last value plus the mean change of the
  * learning part; a ridge regression on the signal's own last readings.
  *
  * source  persistence, seasonal persistence and drift: Hyndman & Athanasopoulos, Forecasting: Principles and Practice,
@@ -34,7 +53,7 @@ export interface RivalInput {
  */
 export function makeRivals(input: RivalInput): Rival[] {
   const rivals = [persistence(input)];
-  if (input.periodTicks > 0) rivals.push(seasonal(input));
+  for (const [name, ticks] of periodsOf(input)) rivals.push(seasonal(input, name, ticks));
   if (input.learn !== null) {
     rivals.push(drift(input, input.learn));
     const ridge = windowRidge(input, input.learn);
@@ -63,9 +82,19 @@ function persistence({ carried }: RivalInput): Rival {
   };
 }
 
-function seasonal({ carried, periodTicks }: RivalInput): Rival {
+/** The period found, and the calendar's that are not that one and of which the past holds at least three. */
+function periodsOf({ periodTicks, tickMs, knownTicks }: RivalInput): (readonly [string, number])[] {
+  const calendar = CALENDAR.flatMap(([name, ms]): (readonly [string, number])[] => {
+    const ticks = ms / tickMs;
+    const isHeld = Number.isInteger(ticks) && ticks > 1 && PERIODS_HELD * ticks <= knownTicks;
+    return isHeld && ticks !== periodTicks ? [[name, ticks]] : [];
+  });
+  return periodTicks > 0 ? [['seasonal persistence', periodTicks], ...calendar] : calendar;
+}
+
+function seasonal({ carried }: RivalInput, name: string, periodTicks: number): Rival {
   return {
-    name: 'seasonal persistence',
+    name,
     forecast(signal, at, out) {
       const y = carried[signal];
       for (let h = 1; h <= out.length; h++) {

@@ -6,8 +6,8 @@ import type { Hindcast } from '../../../trainer/judge/hindcast.ts';
 function cast(ours: readonly number[], persistence: readonly number[]): Hindcast {
   const cells = ours.length;
   return {
-    signals: ['level', 'flow'].slice(0, cells),
-    units: ['m', 'm3/h'].slice(0, cells),
+    signals: ['level', 'flow', 'current'].slice(0, cells),
+    units: ['m', 'm3/h', 'A'].slice(0, cells),
     horizon: 1,
     tickMs: 60_000,
     origins: 100,
@@ -30,6 +30,12 @@ function cast(ours: readonly number[], persistence: readonly number[]): Hindcast
     residuals: [],
     paths: [],
     readings: [],
+    originMs: Float64Array.from({ length: 100 }, (_, k) => (k - 1) * 60_000),
+    pathLoss: ours.map((loss) => new Float64Array(100).fill(loss)),
+    rivalPathLoss: [...persistence, ...persistence.map((loss) => loss / 100)].map((loss) =>
+      new Float64Array(100).fill(loss),
+    ),
+    reliability: null,
   };
 }
 
@@ -40,8 +46,8 @@ describe('the gate', () => {
     expect(verdicts.meanSkill).toBeCloseTo(0.15, 12);
     expect(verdicts.sentence).toMatch(/^Beats the best obvious guess on 1 of 2 signals/);
     expect(verdicts.signals.map((one) => one.sentence)).toEqual([
-      'level: squared error 40 % below persistence one step ahead; 90 % inside the 90 % bounds.',
-      'flow: no better than persistence one step ahead (squared error 10 % above); 90 % inside the 90 % bounds.',
+      'level: squared error 40 % below persistence one step ahead (sure; better in 8 of 8 stretches); 90 % inside the 90 % bounds.',
+      'flow: no better than persistence one step ahead (squared error 10 % above, surely); 90 % inside the 90 % bounds.',
     ]);
   });
 
@@ -56,6 +62,47 @@ describe('the gate', () => {
 
   it('is not carried by one signal where another loses more', () => {
     expect(judge(cast([0.5, 1.6], [1, 1])).hasSkill).toBe(false);
+  });
+
+  it('counts a signal as no worse than twice the guess, and names it', () => {
+    // A signal that hardly moves: its persistence errs by next to nothing.
+    const verdicts = judge(cast([0.1, 31], [1, 1]));
+    expect(verdicts.meanSkill).toBeCloseTo((0.9 - 1) / 2, 12);
+    expect(verdicts.hasSkill).toBe(false);
+    const carried = judge(cast([0.1, 0.1, 31], [1, 1, 1]));
+    expect(carried.meanSkill).toBeCloseTo((0.9 + 0.9 - 1) / 3, 12);
+    expect(carried.hasSkill).toBe(true);
+    expect(carried.sentence).toMatch(/27 % lower\. The guess is better for current\.$/);
+    expect(carried.signals[2]!.sentence).toContain('(squared error 3000 % above)');
+  });
+
+  it('tells a sure gain from one that may be chance, and stretches won from stretches lost', () => {
+    const base = cast([0.8], [1]);
+    const losses = (of: (k: number) => number): Float64Array => Float64Array.from({ length: 100 }, (_, k) => of(k));
+    const steady = { ...base, pathLoss: [losses((k) => 0.8 + 0.1 * Math.sin(3 * k))] };
+    const sure = judge(steady).signals[0]!;
+    expect(sure.sentence).toContain('20 % below persistence one step ahead (sure; better in 8 of 8 stretches);');
+    expect(sure.test!.pBetter).toBeLessThan(1e-6);
+    // All of the gain comes from one stretch in which the rival failed.
+    const luck = {
+      ...base,
+      pathLoss: [losses((k) => 1.05 + 0.01 * Math.sin(3 * k))],
+      rivalPathLoss: [losses((k) => (k === 40 ? 31 : 1)), losses(() => 0.01)],
+      mse: Float64Array.of(1.05),
+      rivalMse: Float64Array.of(1.3, 0.01),
+    };
+    const chance = judge(luck).signals[0]!;
+    expect(chance.sentence).toContain(
+      '19 % below persistence one step ahead (may be chance; better in 1 of 8 stretches);',
+    );
+    expect(chance.blocks).toHaveLength(8);
+    expect(chance.blocks.filter((block) => block.skill > 0)).toHaveLength(1);
+    const worse = judge({
+      ...steady,
+      mse: Float64Array.of(1.2),
+      pathLoss: [losses((k) => 1.2 + 0.1 * Math.sin(3 * k))],
+    });
+    expect(worse.signals[0]!.sentence).toContain('(squared error 20 % above, surely)');
   });
 
   it('knows nothing of a signal with a handful of readings', () => {

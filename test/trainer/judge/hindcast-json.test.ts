@@ -29,6 +29,10 @@ it('averages a rival over every signal, one that both forecast without error inc
     residuals: [],
     paths: [],
     readings: [],
+    originMs: Float64Array.from({ length: 10 }, (_, k) => k * 60_000),
+    pathLoss: [2, 0].map((loss) => new Float64Array(10).fill(loss)),
+    rivalPathLoss: [4, 0].map((loss) => new Float64Array(10).fill(loss)),
+    reliability: null,
   };
   // Standardised by scale 2: ours 2/4, theirs 4/4; averaged over two signals 0.25 and 0.5.
   const { average } = hindcastJson(cast) as { average: { mse_standardised: number; rivals: unknown } };

@@ -3,8 +3,7 @@
  * out from its definition, every pair gathered and averaged. And that nothing which is learned has seen what is judged.
  */
 import { describe, expect, it } from 'vitest';
-import { createState, forecastPath, type LinearModel, update } from '../../../runtime/filter/index.ts';
-import { settlingTicks } from '../../../trainer/identify/bank.ts';
+import { createState, forecastPath, type Model, settlingTicksOf, update } from '../../../runtime/filter/index.ts';
 import { type Hindcast, hindcast } from '../../../trainer/judge/hindcast.ts';
 import { carryForward, makeRivals } from '../../../trainer/judge/rivals.ts';
 import { FIT_DEFAULTS, type FitResult, fit as fitHistory } from '../../../trainer/pipeline.ts';
@@ -12,6 +11,8 @@ import { hourlySite, seriesOf, wanderingDays } from '../../support/history.ts';
 
 const names = ['level', 'flow'];
 const H = 6;
+// 560 hours lie before the first origin: three weeks and more.
+const RIVALS = ['persistence', 'seasonal persistence', 'weekly persistence', 'drift', 'window ridge'];
 const site = hourlySite(names, H);
 const values = wanderingDays(2, 700, 4);
 for (const [c, t] of [
@@ -30,10 +31,12 @@ const lattices = [
   { step: 0.01, offset: 0 },
   { step: 0.01, offset: 0 },
 ];
-const result: FitResult = await fitHistory({ series, site, survey: {}, lattices }, FIT_DEFAULTS);
+// The kind is not what is tested here.
+const OPTIONS = { ...FIT_DEFAULTS, kind: 'linear' } as const;
+const result: FitResult = await fitHistory({ series, site, survey: {}, lattices }, OPTIONS);
 
-function slowPath(model: LinearModel, origin: number): Float64Array {
-  const warm = Math.max(model.warmupTicks, settlingTicks(bankOf(model)));
+function slowPath(model: Model, origin: number): Float64Array {
+  const warm = Math.max(model.warmupTicks, settlingTicksOf(model));
   const first = Math.max(0, result.judged.fromTick - series.firstTick - 1 - warm);
   const state = createState(model);
   for (let t = first; t <= origin; t++) {
@@ -47,14 +50,6 @@ function slowPath(model: LinearModel, origin: number): Float64Array {
   const path = new Float64Array(2 * H);
   forecastPath(model, state, path);
   return path;
-}
-
-function bankOf(model: LinearModel) {
-  return {
-    decays: Array.from(model.decays),
-    resonators: Array.from(model.resonatorRe, (re, k) => [re, model.resonatorIm[k]!] as const),
-    lags: [],
-  };
 }
 
 const mean = (numbers: readonly number[]): number => numbers.reduce((sum, value) => sum + value, 0) / numbers.length;
@@ -84,13 +79,14 @@ describe('hindcast', () => {
     }
   });
 
-  it('scores persistence, the day before and drift by their definitions', () => {
-    expect(cast.rivals).toEqual(['persistence', 'seasonal persistence', 'drift', 'window ridge']);
+  it('scores persistence, the day and the week before and drift by their definitions', () => {
+    expect(cast.rivals).toEqual(RIVALS);
     const last = values.map((y, i) => carryForward(y, result.model.mean[i]!));
     const learnTicks = result.learn.toTick - result.learn.fromTick;
     const forecasts: ((i: number, t: number, h: number) => number)[] = [
       (i, t) => last[i]![t]!,
       (i, t, h) => last[i]![t + h - 24]!,
+      (i, t, h) => last[i]![t + h - 168]!,
       (i, t, h) => last[i]![t]! + (h * (last[i]![learnTicks - 1]! - last[i]![0]!)) / (learnTicks - 1),
     ];
     forecasts.forEach((forecast, r) => {
@@ -136,7 +132,7 @@ describe('hindcast', () => {
   it('leaves out rivals that would have to learn where the learning part is not there', () => {
     const end = series.firstTick + series.ticks;
     const cast = hindcast(result.model, series, { fromTick: end - 60, toTick: end, learn: null }, ['1', '1']);
-    expect(cast.rivals).toEqual(['persistence', 'seasonal persistence']);
+    expect(cast.rivals).toEqual(RIVALS.slice(0, 3));
   });
 });
 
@@ -147,7 +143,7 @@ describe('what is judged', () => {
   );
 
   it('is seen by nothing that is learned', async () => {
-    const again = await fitHistory({ series: seriesOf(names, other), site, survey: {}, lattices }, FIT_DEFAULTS);
+    const again = await fitHistory({ series: seriesOf(names, other), site, survey: {}, lattices }, OPTIONS);
     expect(again.bundle.linear).toEqual(result.bundle.linear);
     expect(again.bundle.bounds).toEqual(result.bundle.bounds);
     expect(again.bundle.channels).toEqual(result.bundle.channels);
@@ -160,7 +156,15 @@ describe('what is judged', () => {
     const learn = { fromTick: 0, toTick: result.learn.toTick - series.firstTick };
     const rivalsOf = (of: readonly Float64Array[]) => {
       const carried = of.map((y) => carryForward(y, 20));
-      return makeRivals({ carried, taught: carried, horizon: H, periodTicks: 24, learn });
+      return makeRivals({
+        carried,
+        taught: carried,
+        horizon: H,
+        periodTicks: 24,
+        tickMs: 3_600_000,
+        knownTicks: 560,
+        learn,
+      });
     };
     const origin = result.judged.fromTick - series.firstTick - 1;
     const paths = (of: readonly Float64Array[]): number[][] =>
