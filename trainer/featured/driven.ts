@@ -1,0 +1,137 @@
+/**
+ * The driven kind as a candidate: short records of plants whose inputs make the signals. A linear simulation comes first; if
+ * the inputs do not explain the signals with that, nothing more is tried.
+ */
+import type { Attempt, Candidate } from '../kinds/candidate.ts';
+import { type DrivenParts, drivenModel, drivenSection } from './driven-parts.ts';
+import { averageRun, chooseSetting, fitMembers, type Member, runError, type Setting } from './ensemble.ts';
+import { fadingTimes, fitDeviation, fitLead } from './fading.ts';
+import type { DrivenRecord } from './free-run.ts';
+import { fitLinearStart, type LinearStart } from './linear-start.ts';
+import { sensorRange } from './sensor-range.ts';
+import { forgettingTicks, hiddenStarts } from './simulation-start.ts';
+
+/** Beyond this a record is long enough for kinds that need no simulation, and a fit takes minutes. */
+const MOST_TICKS = 5000;
+const MOST_SIGNALS = 4;
+const MOST_INPUTS = 8;
+const HIDDEN_COUNTS = [0, 1, 2] as const;
+const MEMBERS = 5;
+const ITERATIONS = 40;
+/** Share of the signals' variance on held-out time that the linear simulation must explain. */
+const LEAST_EXPLAINED = 0.3;
+
+/**
+ * The driven candidate; null for a record without inputs, a long or wide one, or one whose inputs do not explain the signals.
+ *
+ * shapes  as Candidate
+ * units   standardised
+ * throws  nothing of its own
+ * source  random features in a state space fitted on its free run, averaged over draws
+ * cost    some thirty member fits
+ */
+export function tryDriven(attempt: Attempt): Candidate | null {
+  const { prepared, around } = attempt;
+  const nu = around.scalings.length - around.signalCount;
+  const { learnTicks, calibrateTicks } = prepared;
+  if (nu < 1 || nu > MOST_INPUTS || around.signalCount > MOST_SIGNALS || learnTicks > MOST_TICKS) return null;
+  const record = recordOf(attempt, learnTicks + calibrateTicks);
+  const learn = { ...record, to: learnTicks };
+  const range = sensorRange(learn);
+  const starts = HIDDEN_COUNTS.map((count) => fitLinearStart(learn, count)).filter((start) => start !== null);
+  if (!starts.some((start) => explains(start, record, learnTicks))) return null;
+  const { setting } = chooseSetting(record, learnTicks, starts, range);
+  const members = membersOf(learn, setting, attempt.options.seed);
+  const run = averageRun(members, record, range);
+  const times = fadingTimes(around.horizon, learnTicks);
+  const parts = partsOf(attempt, setting, members, learn, {
+    range,
+    times,
+    deviationGain: joined(record.signals.map((y, i) => fitDeviation(difference(y, run[i]), times, around.horizon))),
+    inputGain: joined(record.inputs.map((u) => fitLead(u.subarray(0, learnTicks), times, around.horizon))),
+  });
+  return parts === null ? null : candidateOf(attempt, parts);
+}
+
+type Fades = Pick<DrivenParts, 'range' | 'times' | 'deviationGain' | 'inputGain'>;
+
+/** Null where the simulation never forgets where it began. */
+function partsOf(
+  attempt: Attempt,
+  setting: Setting,
+  members: readonly Member[],
+  learn: DrivenRecord,
+  fades: Fades,
+): DrivenParts | null {
+  const start = hiddenStarts(members, learn);
+  const draft = { ...fades, setting, seed: attempt.options.seed, members, start, settleTicks: 0 };
+  const settleTicks = forgettingTicks(drivenModel(draft, attempt.around, true), learn);
+  return settleTicks === null ? null : { ...draft, settleTicks };
+}
+
+function candidateOf(attempt: Attempt, parts: DrivenParts): Candidate | null {
+  const sections = { kind: 'driven' as const, driven: drivenSection(parts) };
+  if (attempt.bytesLeft(sections) < 0) return null;
+  const { setting, members } = parts;
+  const { hiddenCount, featureCount, width, penalty } = setting;
+  return {
+    kind: 'driven',
+    name: `${members.length} simulations of ${attempt.around.signalCount + hiddenCount} states, ${featureCount} features`,
+    float: drivenModel(parts, attempt.around, false),
+    rounded: drivenModel(parts, attempt.around, true),
+    sections,
+    settled: { members: members.length, hidden: hiddenCount, features: featureCount, width, penalty },
+    again(ticks) {
+      const record = recordOf(attempt, ticks);
+      const more = partsOf(attempt, setting, membersOf(record, setting, parts.seed), record, parts);
+      return (more === null ? null : candidateOf(attempt, more)) ?? (candidateOf(attempt, parts) as Candidate);
+    },
+  };
+}
+
+function membersOf(record: DrivenRecord, setting: Setting, seed: number): Member[] {
+  const start = fitLinearStart(record, setting.hiddenCount);
+  if (start === null) return [];
+  const seeds = Array.from({ length: MEMBERS }, (_, k) => seed + k);
+  return fitMembers(record, start, setting, seeds, ITERATIONS);
+}
+
+function explains(start: LinearStart, record: DrivenRecord, learnTo: number): boolean {
+  const range = { low: record.signals.map(() => -4), high: record.signals.map(() => 4) };
+  const member = { ...start, features: { frequencies: new Float64Array(0), phases: new Float64Array(0) } };
+  const sensor = { low: Float64Array.from(range.low), high: Float64Array.from(range.high) };
+  const run = averageRun([member], record, sensor);
+  return runError(run, record, learnTo) < (1 - LEAST_EXPLAINED) * variance(record, learnTo);
+}
+
+function variance({ signals, to }: DrivenRecord, from: number): number {
+  let total = 0;
+  let count = 0;
+  for (const y of signals) {
+    const read = y.subarray(from, to).filter((value) => !Number.isNaN(value));
+    const mean = read.reduce((sum, value) => sum + value, 0) / read.length;
+    for (const value of read) total += (value - mean) * (value - mean);
+    count += read.length;
+  }
+  return total / count;
+}
+
+/** The first `ticks` ticks: readings as they stood, inputs completed. */
+function recordOf({ prepared, around }: Attempt, ticks: number): DrivenRecord {
+  const { values, isRead } = prepared.filled;
+  const ny = around.signalCount;
+  return {
+    signals: values.slice(0, ny).map((z, i) => z.map((value, t) => (isRead[i][t] === 1 ? value : Number.NaN))),
+    inputs: values.slice(ny),
+    from: 0,
+    to: ticks,
+  };
+}
+
+function difference(y: Float64Array, run: Float64Array): Float64Array {
+  return run.map((value, t) => y[t] - value);
+}
+
+function joined(parts: readonly Float64Array[]): Float64Array {
+  return Float64Array.from(parts.flatMap((part) => Array.from(part)));
+}

@@ -1,0 +1,197 @@
+/**
+ * Second moments of random features and of what they are to explain, group by group, so that folds, penalties and read-outs
+ * are small algebra.
+ */
+import { SUMMARY_LIMIT, widenedFeatures } from '@stillwell/runtime/filter';
+import type { Origins } from './origins.ts';
+
+/** What the features see, and how many there are. */
+export interface FeatureSetting {
+  readonly seed: number;
+  readonly count: number;
+  readonly width: number;
+  /** Leading predictive states. */
+  readonly states: number;
+  /** Channels whose values follow, rising. */
+  readonly channels: readonly number[];
+}
+
+/** Sums over origins. D features, m targets. */
+export interface FeatureMoments {
+  readonly origins: number;
+  /** (D) */
+  readonly sum: Float64Array;
+  /** (D × D) */
+  readonly gram: Float64Array;
+  /** (m) */
+  readonly targetSum: Float64Array;
+  /** (D × m) */
+  readonly cross: Float64Array;
+  /** (m) sums of squares of the targets. */
+  readonly square: Float64Array;
+}
+
+const TURN = 2 * Math.PI;
+const BLOCK = 64;
+
+/**
+ * Gathers moments of the origins from `from` to before `to`.
+ *
+ * shapes  as FeatureMoments; m = ny·r
+ * units   standardised
+ * throws  nothing
+ * source  definition
+ * cost    O(n D² / 2 + n D (q + m))
+ */
+export function gatherFeatures(origins: Origins, setting: FeatureSetting, from: number, to: number): FeatureMoments {
+  const D = setting.count;
+  const { targets } = origins;
+  const m = targets.length / origins.at.length;
+  const moments = emptyMoments(D, m);
+  const evaluate = featureEvaluator(origins, setting);
+  const block = new Float64Array(BLOCK * D);
+  for (let start = from; start < to; start += BLOCK) {
+    const rows = Math.min(BLOCK, to - start);
+    for (let k = 0; k < rows; k++) evaluate(start + k, block, k * D);
+    addGram(moments.gram, block, rows, D);
+    for (let k = 0; k < rows; k++) {
+      const aim = (start + k) * m;
+      for (let j = 0; j < D; j++) {
+        const phi = block[k * D + j];
+        moments.sum[j] += phi;
+        for (let c = 0; c < m; c++) moments.cross[j * m + c] += phi * targets[aim + c];
+      }
+      for (let c = 0; c < m; c++) {
+        moments.targetSum[c] += targets[aim + c];
+        moments.square[c] += targets[aim + c] * targets[aim + c];
+      }
+    }
+  }
+  for (let a = 0; a < D; a++) for (let b = 0; b < a; b++) moments.gram[b * D + a] = moments.gram[a * D + b];
+  return { ...moments, origins: to - from };
+}
+
+/** Writes the features of an origin. */
+function featureEvaluator(
+  { states, values, at }: Origins,
+  setting: FeatureSetting,
+): (origin: number, out: Float64Array, to: number) => void {
+  const d = states.length / at.length;
+  const nc = values.length / at.length;
+  const q = setting.states + setting.channels.length;
+  const { frequencies, phases } = widenedFeatures(setting.seed, setting.count, q, setting.width);
+  const radians = frequencies.map((turns) => TURN * turns);
+  const offsets = phases.map((turns) => TURN * turns);
+  const v = new Float64Array(q);
+  return (origin, out, to) => {
+    for (let k = 0; k < q; k++) {
+      const number =
+        k < setting.states ? states[origin * d + k] : values[origin * nc + setting.channels[k - setting.states]];
+      v[k] = Math.max(-SUMMARY_LIMIT, Math.min(SUMMARY_LIMIT, number));
+    }
+    for (let j = 0; j < setting.count; j++) {
+      let angle = offsets[j];
+      for (let k = 0; k < q; k++) angle += radians[j * q + k] * v[k];
+      out[to + j] = Math.cos(angle);
+    }
+  };
+}
+
+/** Lower triangle of Φ'Φ of a block, four rows at a time. */
+function addGram(gram: Float64Array, block: Float64Array, rows: number, D: number): void {
+  block.fill(0, rows * D);
+  for (let k = 0; k < rows; k += 4) {
+    const r0 = k * D;
+    for (let a = 0; a < D; a++) {
+      const f0 = block[r0 + a];
+      const f1 = block[r0 + D + a];
+      const f2 = block[r0 + 2 * D + a];
+      const f3 = block[r0 + 3 * D + a];
+      const row = a * D;
+      for (let b = 0; b <= a; b++) {
+        gram[row + b] +=
+          f0 * block[r0 + b] + f1 * block[r0 + D + b] + f2 * block[r0 + 2 * D + b] + f3 * block[r0 + 3 * D + b];
+      }
+    }
+  }
+}
+
+function emptyMoments(D: number, m: number): Omit<FeatureMoments, 'origins'> {
+  return {
+    sum: new Float64Array(D),
+    gram: new Float64Array(D * D),
+    targetSum: new Float64Array(m),
+    cross: new Float64Array(D * m),
+    square: new Float64Array(m),
+  };
+}
+
+/**
+ * Sum of several groups' moments.
+ *
+ * shapes  as FeatureMoments
+ * units   standardised
+ * throws  nothing
+ * source  none
+ * cost    O(D² groups)
+ */
+export function addFeatureMoments(parts: readonly FeatureMoments[]): FeatureMoments {
+  const add = (pick: (part: FeatureMoments) => Float64Array): Float64Array => {
+    const out = pick(parts[0]).slice();
+    for (const part of parts.slice(1)) {
+      const more = pick(part);
+      for (let k = 0; k < out.length; k++) out[k] += more[k];
+    }
+    return out;
+  };
+  return {
+    origins: parts.reduce((sum, part) => sum + part.origins, 0),
+    sum: add((part) => part.sum),
+    gram: add((part) => part.gram),
+    targetSum: add((part) => part.targetSum),
+    cross: add((part) => part.cross),
+    square: add((part) => part.square),
+  };
+}
+
+/** A linear map of the features with its offset. */
+export interface FeatureMap {
+  /** (D × m) */
+  readonly weights: Float64Array;
+  /** (m) */
+  readonly offset: Float64Array;
+}
+
+/**
+ * Squared error of a map by moments.
+ *
+ * shapes  result (m), sums over the origins
+ * units   standardised²
+ * throws  nothing
+ * source  |t − W'φ − o|² multiplied out
+ * cost    O(D² m)
+ */
+export function featureError(moments: FeatureMoments, { weights, offset }: FeatureMap): Float64Array {
+  const { sum, gram, targetSum, cross, square, origins } = moments;
+  const D = sum.length;
+  const m = offset.length;
+  const out = new Float64Array(m);
+  const pushed = new Float64Array(m);
+  const mean = new Float64Array(m);
+  for (let j = 0; j < D; j++) {
+    pushed.fill(0);
+    for (let b = 0; b < D; b++) {
+      const g = gram[j * D + b];
+      for (let c = 0; c < m; c++) pushed[c] += g * weights[b * m + c];
+    }
+    for (let c = 0; c < m; c++) {
+      out[c] += weights[j * m + c] * (pushed[c] - 2 * cross[j * m + c]);
+      mean[c] += weights[j * m + c] * sum[j];
+    }
+  }
+  for (let c = 0; c < m; c++) {
+    out[c] += square[c] - 2 * offset[c] * targetSum[c] + origins * offset[c] * offset[c] + 2 * offset[c] * mean[c];
+    out[c] = Math.max(0, out[c]);
+  }
+  return out;
+}
