@@ -22,7 +22,9 @@ export interface FoundLattice extends Lattice {
   readonly how: 'declared' | 'decimals' | 'float32 decimals' | 'multiples' | 'computed' | 'no readings';
 }
 
+/** Decimals looked for in values of about 1; as many more in smaller ones, up to what a step's reciprocal can hold. */
 const MAX_DECIMALS = 9;
+const MOST_DECIMALS = 15;
 /** Rounding of a few operations in double precision, relative. */
 const DOUBLE_TOLERANCE = 2 ** -50;
 /** Half a unit in the last place of a 32-bit float, relative, and a little. */
@@ -63,11 +65,18 @@ function largest(values: Float64Array): number {
   return most;
 }
 
+function mostDecimals(values: Float64Array): number {
+  const size = largest(values);
+  return size > 0
+    ? Math.min(MOST_DECIMALS, MAX_DECIMALS + Math.max(0, -Math.floor(Math.log10(size)) - 1))
+    : MAX_DECIMALS;
+}
+
 /** Decimals of values that went through 32-bit floats; -1 where the fit would prove nothing or fails. */
 function singleDecimals(values: Float64Array): number {
   if (!isSingle(values)) return -1;
   const finest = Math.floor(-Math.log10(largest(values) * SINGLE_TOLERANCE * 8));
-  return finest < 0 ? -1 : decimalsOf(values, SINGLE_TOLERANCE, Math.min(MAX_DECIMALS, finest));
+  return finest < 0 ? -1 : decimalsOf(values, SINGLE_TOLERANCE, Math.min(mostDecimals(values), finest));
 }
 
 function greatestDivisor(a: number, b: number): number {
@@ -126,7 +135,7 @@ function computedStep(values: Float64Array): number {
 export function findLattice(values: Float64Array): FoundLattice {
   if (values.every((value) => Number.isNaN(value))) return { step: 1, offset: 0, how: 'no readings' };
   let how: FoundLattice['how'] = 'decimals';
-  let decimals = decimalsOf(values, DOUBLE_TOLERANCE, MAX_DECIMALS);
+  let decimals = decimalsOf(values, DOUBLE_TOLERANCE, mostDecimals(values));
   if (decimals < 0) {
     how = 'float32 decimals';
     decimals = singleDecimals(values);

@@ -83,8 +83,9 @@ function isSwitch(values: Float64Array): boolean {
   return true;
 }
 
-function resolutionOf(lattice: FoundLattice): number | null {
-  return lattice.how === 'no readings' || lattice.offset !== 0 ? null : lattice.step;
+/** None where the values show none: a step declared must be one that every reading keeps to. */
+function resolutionOf({ how, step, offset }: FoundLattice): number | null {
+  return how === 'no readings' || how === 'computed' || offset !== 0 ? null : step;
 }
 
 function filledIn(signal: Signal, readings: ChannelReadings): Signal {

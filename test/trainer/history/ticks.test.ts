@@ -64,6 +64,11 @@ describe('lattices', () => {
       (k: number) => Math.fround(k / 1000 + 5),
       { step: 0.001, offset: 0, how: 'float32 decimals' },
     ],
+    [
+      'billionths with three digits',
+      (k: number) => Number(`${k + 100}e-11`),
+      { step: 1e-11, offset: 0, how: 'decimals' },
+    ],
     ['decimals after arithmetic', (k: number) => k * 0.1 + 0.2, { step: 0.1, offset: 0, how: 'decimals' }],
   ])('%s', (_, make, expected) => expect(findLattice(many(make))).toEqual(expected));
   it('stays at the decimals where one value does not fit, or few values were seen', () => {
