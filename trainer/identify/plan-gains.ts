@@ -1,15 +1,16 @@
 /**
- * Gains of the filters, signal by signal: ridge on what the path without a plan missed, its penalty by rolling origin, and
- * no gain at all where that is not surely better.
+ * Gains of the filters, signal by signal: ridge on what the path without a plan missed, under the penalty that gains most
+ * surely on rolling origins, and no gain at all where none surely does.
  */
 import { cholesky, solveCholesky } from '../linalg/cholesky.ts';
 import { type PlanFolds, penalised } from './plan-folds.ts';
 import type { PlanOrigins } from './plan-origins.ts';
 import { filterInto } from './plan-surprise.ts';
-import { gainsSurely, geometricMean } from './sure-gain.ts';
+import { gainsSurely, geometricMean, sureGain } from './sure-gain.ts';
 
-const PENALTIES = [1e-5, 1e-4, 1e-3, 1e-2, 1e-1, 1] as const;
-/** A heavier penalty within this share of the best is preferred. */
+/** Up to heavy ones: where the answer changes with the season, a small part of it is all that is sure. */
+const PENALTIES = [1e-5, 1e-4, 1e-3, 1e-2, 1e-1, 1, 3, 10, 30, 100] as const;
+/** A heavier penalty that gains as surely but for this, in logarithms, is preferred. */
 const TIE = 0.002;
 /** A signal listens to plans only for this gain. */
 const LEAST_GAIN = 0.01;
@@ -72,10 +73,10 @@ function choosePenalty(
       return errorOf(groups[judged], gains, width);
     }),
   );
-  const means = errors.map(geometricMean);
-  const best = means.findLastIndex((mean) => mean <= Math.min(...means) * (1 + TIE));
+  const sure = errors.map((perFold) => sureGain(perFold, without));
+  const best = sure.findLastIndex((gain) => gain >= Math.max(...sure) - TIE);
   if (!gainsSurely(errors[best], without, LEAST_GAIN)) return { penalty: null, ratio: 1 };
-  return { penalty: PENALTIES[best], ratio: means[best] / geometricMean(without) };
+  return { penalty: PENALTIES[best], ratio: geometricMean(errors[best]) / geometricMean(without) };
 }
 
 /** Sums of every group, and of what belongs to none. */
