@@ -22,7 +22,7 @@ const ITERATIONS = 40;
 const LEAST_EXPLAINED = 0.3;
 
 /**
- * The driven candidate; null for a record without inputs, a long or wide one, or one whose inputs do not explain the signals.
+ * The driven candidate; null for a record without inputs that ever vary, a long or wide one, or one whose inputs do not explain the signals.
  *
  * shapes  as Candidate
  * units   standardised
@@ -35,6 +35,7 @@ export function tryDriven(attempt: Attempt): Candidate | null {
   const nu = around.scalings.length - around.signalCount;
   const { learnTicks, calibrateTicks } = prepared;
   if (nu < 1 || nu > MOST_INPUTS || around.signalCount > MOST_SIGNALS || learnTicks > MOST_TICKS) return null;
+  if (around.scalings.slice(around.signalCount).every(({ isConstant }) => isConstant)) return null;
   const record = recordOf(attempt, learnTicks + calibrateTicks);
   const learn = { ...record, to: learnTicks };
   const range = sensorRange(learn);
