@@ -52,9 +52,9 @@ describe('solveStein', () => {
     );
   });
 
-  it("gives X = A X B' + W, a pair on one side and a mixture on the other", () => {
+  it('gives X = A X B + W, a pair on one side and a mixture on the other', () => {
     const v = Float64Array.of(1, 2, -1, 0.5, 0.3, 0.7);
-    const x = multiply(basis, solveStein(found.modes, b, multiply(found.drive, v, 3, 3, 2)), 3, 3, 2);
+    const x = multiply(basis, solveStein(found.modes, transposeModes(b), multiply(found.drive, v, 3, 3, 2)), 3, 3, 2);
     closeTo(
       x,
       [2.65308028740843, 2.19384496254464, -1.21683865590123, 1.56594118453786, 0.624799098100459, 0.0121940876129152],
