@@ -16,8 +16,8 @@ export interface Origins {
   readonly at: Int32Array;
   /** (n × d) predictive states */
   readonly states: Float64Array;
-  /** (n × nc) values */
-  readonly values: Float64Array;
+  /** Values folded in, (nc) of (ticks from `from`), an index into the series. */
+  readonly folded: { readonly from: number; readonly values: readonly Float64Array[] };
   /** (n × ny·r) remainders on orthonormal curves: squares add up to the weighted squared error that curves can reach */
   readonly targets: Float64Array;
   /** (ny) of (r × r) lower L with B'WB = L L': a signal's coefficients c have the orthonormal ones L'c. */
@@ -41,17 +41,15 @@ const LEAST_SQUARE = 0.1;
  * cost    one replay, a path an origin
  */
 export function gatherOrigins(model: LinearModel, series: Series, filled: Filled, span: TickSpan): Origins {
-  const { signalCount: ny, channelCount: nc, horizon: H, order: d } = model;
+  const { signalCount: ny, horizon: H, order: d } = model;
   const most = Math.min(MOST_ORIGINS, MOST_NUMBERS / (ny * H));
   const every = Math.max(1, Math.ceil((span.toTick - span.fromTick) / most));
   const at = usableOrigins(filled, span, H, every);
   const states = new Float64Array(at.length * d);
-  const values = new Float64Array(at.length * nc);
   const rest = new Float64Array(at.length * ny * H);
   let n = 0;
-  runFilter(model, series, at, (t, state, path) => {
+  const folded = runFilter(model, series, at, (t, state, path) => {
     states.set(state.x, n * d);
-    values.set(state.value, n * nc);
     for (let i = 0; i < ny; i++) {
       for (let h = 1; h <= H; h++) {
         const forecast = (path[i * H + h - 1] - model.mean[i]) / model.scale[i];
@@ -60,7 +58,7 @@ export function gatherOrigins(model: LinearModel, series: Series, filled: Filled
     }
     n++;
   });
-  return { at, states, values, ...onCurves(model, rest, at.length) };
+  return { at, states, folded, ...onCurves(model, rest, at.length) };
 }
 
 /**
@@ -101,27 +99,31 @@ function stepWeights(rest: Float64Array, signal: number, ny: number, H: number, 
   return square.map((value) => (mean > 0 ? 1 / (H * (value + LEAST_SQUARE * mean)) : 0));
 }
 
-/** Runs the filter over the record and stops at each origin. */
+/** Runs the filter over the record and stops at each origin; gives the values folded in. */
 function runFilter(
   model: LinearModel,
   series: Series,
   at: Int32Array,
   visit: (t: number, state: ReturnType<typeof createState>, path: Float64Array) => void,
-): void {
-  if (at.length === 0) return;
+): Origins['folded'] {
+  if (at.length === 0) return { from: 0, values: [] };
   const state = createState(model);
   const path = new Float64Array(model.signalCount * model.horizon);
   const readings = new Float64Array(model.channelCount);
   const warm = Math.max(model.warmupTicks, settlingTicksOf(model));
   let next = 0;
-  for (let t = Math.max(0, at[0] - warm); next < at.length; t++) {
+  const from = Math.max(0, at[0] - warm);
+  const values = series.values.map(() => new Float64Array(at[at.length - 1] + 1 - from));
+  for (let t = from; next < at.length; t++) {
     for (let c = 0; c < readings.length; c++) readings[c] = series.values[c][t];
     update(model, state, series.firstTick + t, readings);
+    for (let c = 0; c < readings.length; c++) values[c][t - from] = state.value[c];
     if (t !== at[next]) continue;
     forecastPath(model, state, path);
     visit(t, state, path);
     next++;
   }
+  return { from, values };
 }
 
 /** Every so many ticks, outside long gaps from the origin to the horizon. */
@@ -129,7 +131,7 @@ function usableOrigins({ inLongGap }: Filled, span: TickSpan, horizon: number, e
   const out: number[] = [];
   let nextGap = Number.POSITIVE_INFINITY;
   for (let t = span.toTick - 1; t >= span.fromTick; t--) {
-    if (inLongGap[t] === 1) nextGap = t;
+    if (inLongGap[t] !== 0) nextGap = t;
     if (t + horizon < span.toTick && nextGap > t + horizon && (t - span.fromTick) % every === 0) out.push(t);
   }
   return Int32Array.from(out.reverse());
