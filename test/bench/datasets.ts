@@ -180,7 +180,7 @@ function sensorNetwork(): DataCase[] {
     ),
     horizon: 24,
     periods: [],
-    origins: 100,
+    origins: 300,
     peers: COMMON,
   }));
 }

@@ -1,5 +1,5 @@
 /**
- * Forecasts of reference libraries on a series of ours: each peer is a process of its own with a time limit, given a folder with
+ * Forecasts of reference libraries on a series of ours: each peer is a process of its own with a limit of processor time, given a folder with
  *
  *     case.csv      one fact a line: learn_ticks, fit_ticks, horizon, targets, periods
  *     values.csv    header, then one line a tick: the signals to forecast, then what else is known; NaN for a gap
@@ -34,7 +34,10 @@ interface Peer {
 
 const SCRIPTS = fileURLToPath(new URL('../peers/', import.meta.url));
 const PYTHON = '/usr/bin/python3';
+/** Of processor time, so that a busy machine does not change what is compared. */
 const MOST_SECONDS = 150;
+/** Of the clock, for one that hangs. */
+const MOST_WAITED_SECONDS = 1200;
 const KEPT_ERROR = 300;
 
 const python = (script: string): readonly string[] => [PYTHON, '-B', `${script}.py`];
@@ -90,7 +93,7 @@ export async function runPeer(name: string, task: PeerTask): Promise<PeerForecas
   const at = rest.findIndex((word) => /\.(py|R|m)$/.test(word));
   const words = [...rest.slice(0, at), join(SCRIPTS, rest[at]!), task.folder, out, ...rest.slice(at + 1)];
   const ended = await run(program!, words);
-  if (!existsSync(out)) return { failure: `${ended}; it needs the Debian package ${debian}` };
+  if (!existsSync(out)) return { failure: `${ended} (Debian package ${debian})` };
   const rows = readFileSync(out, 'utf8')
     .trim()
     .split('\n')
@@ -106,13 +109,14 @@ export async function runPeer(name: string, task: PeerTask): Promise<PeerForecas
 function run(program: string, words: readonly string[]): Promise<string> {
   return new Promise((resolve) => {
     const env = { ...process.env, OMP_NUM_THREADS: '1', OPENBLAS_NUM_THREADS: '1' };
-    const child = spawn(program, words, { env, stdio: ['ignore', 'ignore', 'pipe'] });
+    const limited = ['-c', `ulimit -t ${MOST_SECONDS}; exec "$@"`, 'peer', program, ...words];
+    const child = spawn('/bin/sh', limited, { env, stdio: ['ignore', 'ignore', 'pipe'] });
     let error = '';
     let late = false;
     const limit = setTimeout(() => {
       late = true;
       child.kill('SIGKILL');
-    }, MOST_SECONDS * 1000);
+    }, MOST_WAITED_SECONDS * 1000);
     child.stderr.on('data', (bytes: Buffer) => {
       error = (error + bytes.toString('utf8')).slice(-4 * KEPT_ERROR);
     });

@@ -19,8 +19,9 @@ horizon <- fact("horizon")
 targets <- fact("targets")
 periods <- Filter(function(p) fitTicks >= 2 * p, fact("periods"))
 
-# Longest period that a seasonal ARIMA or exponential smoothing of this package takes.
-LONGEST <- 24
+# Longest period for a season of the model's own: exponential smoothing takes no longer one, and the search for a seasonal ARIMA
+# takes minutes beyond; longer periods come in as harmonics there.
+LONGEST <- if (method == "arima") 12 else 24
 HARMONICS <- 4
 short <- length(periods) > 0 && periods[1] <= LONGEST && periods[1] == round(periods[1])
 plain <- function(y) ts(y, frequency = if (short) periods[1] else 1)
