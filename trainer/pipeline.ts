@@ -152,6 +152,8 @@ function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Pr
   const around: Surroundings = {
     ...prepared.around,
     bank: taught.choice.bank,
+    round: taught.round,
+    warmupTicks: prepared.around.warmupTicks + (taught.round?.ticks ?? 0),
     coverage: options.coverage,
     boundsRate: BOUNDS_RATE,
   };
@@ -167,7 +169,7 @@ function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Pr
     settled: settledOf(split, settled),
   });
   const planned = plannedInputs(input.site);
-  const room = responseRoom(around.signalCount, planned.length, around.horizon);
+  const room = responseRoom(around.signalCount, planned.length, around.horizon, featureCount(around.bank));
   const limit = options.maxBytes - SIGNED_BYTES - room;
   const bytesLeft = (sections: KindSections): number =>
     limit - documentBytes(partsOf(sections, { room: ' '.repeat(SETTLED_ROOM) }));

@@ -5,6 +5,10 @@
  *   rest(t) = z(t) − w z(t − W),   path(t + h) = kernel's path(t + h) + w z(t + h − W),   h ≤ H ≤ W
  *
  * A pattern too long for the bank (days of a week that differ) costs W numbers of memory a signal, and none of the state.
+ * What is not yet known of a round, in a signal's first one, counts as its value now: the last value is then the forecast,
+ * and no reading is passed over. A reading that is passed over later is remembered cut to the guard's limit, not as the
+ * forecast that replaced it: a forecast remembered for a round would be held against the readings of the next, and so on
+ * for ever.
  * source  seasonal differencing: Box, Jenkins, Reinsel & Ljung, Time Series Analysis, 5th ed. (2015), section 9.1, where w = 1
  */
 import { MAX_ROUND_TICKS } from '@stillwell/protocol';
@@ -37,36 +41,40 @@ export function checkRound(model: CommonModel, round: Round): void {
 /**
  * Memory of the rounds.
  *
- * shapes  (ny × (W + 1)): slot t mod (W + 1) holds the value folded in at tick t
+ * shapes  (ny × (W + 1)): slot t mod (W + 1) holds the value of tick t; NaN: not known
  */
 export function createRoundMemory(model: CommonModel): Float64Array {
-  return new Float64Array(model.round === undefined ? 0 : model.signalCount * (model.round.ticks + 1));
+  return new Float64Array(model.round === undefined ? 0 : model.signalCount * (model.round.ticks + 1)).fill(Number.NaN);
 }
 
-/** A signal's past as if it always had been its first reading. */
-export function settleRound(round: Round, memory: Float64Array, signal: number, value: number): void {
+/** Whether a signal's value of a round before a tick is not known though it should be taken away. */
+export function isFirstRound(round: Round, state: FilterState, signal: number, tick: number): boolean {
+  if (signal >= round.weight.length || round.weight[signal] === 0) return false;
   const length = round.ticks + 1;
-  memory.fill(value, signal * length, (signal + 1) * length);
+  const before = state.roundMemory[signal * length + ((tick + 1) % length)];
+  return before - before !== 0;
 }
 
 /**
- * Takes in the values of a tick and works out what the kernel sees.
+ * Takes in the value of a tick and works out what the kernel sees. Before a signal's first reading nothing is remembered.
  *
- * shapes  state.value, state.rest (nc); only signals are touched
- * cost    O(1) a signal; allocates nothing
+ * shapes  state.value, state.rest (nc); only signals are touched; `kept` is what is remembered of the tick
+ * cost    O(1); allocates nothing
  */
-export function advanceRound(round: Round, state: FilterState, signal: number, tick: number): void {
+export function advanceRound(round: Round, state: FilterState, signal: number, tick: number, kept: number): void {
   const length = round.ticks + 1;
-  state.roundMemory[signal * length + (tick % length)] = state.value[signal];
+  state.roundMemory[signal * length + (tick % length)] = state.started[signal] === 0 ? Number.NaN : kept;
   state.rest[signal] = restOf(round, state, signal, tick);
 }
 
 /** z(t) − w z(t − W), from the memory. */
 export function restOf(round: Round, state: FilterState, signal: number, tick: number): number {
   const length = round.ticks + 1;
+  const value = state.value[signal];
   const weight = round.weight[signal];
-  if (weight === 0) return state.value[signal];
-  return state.value[signal] - weight * state.roundMemory[signal * length + ((tick + 1) % length)];
+  if (weight === 0) return value;
+  const before = state.roundMemory[signal * length + ((tick + 1) % length)];
+  return value - weight * (before - before === 0 ? before : value);
 }
 
 /**
@@ -90,7 +98,8 @@ export function addRound(
     let slot = (state.tick + 2) % length;
     for (let h = 1; h <= steps; h++) {
       // Tick t + h − W lies in slot (t + h + 1) mod (W + 1).
-      paths[i * steps + h - 1] += weight * state.roundMemory[i * length + slot];
+      const before = state.roundMemory[i * length + slot];
+      paths[i * steps + h - 1] += weight * (before - before === 0 ? before : state.value[i]);
       slot = slot + 1 === length ? 0 : slot + 1;
     }
   }

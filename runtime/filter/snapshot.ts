@@ -115,7 +115,7 @@ export function restoreState(model: Model, bytes: Uint8Array): FilterState {
   areFinite &&= allFinite(shared);
   eachOfRounds(model, state, (slot) => {
     state.roundMemory[slot] = view.getFloat64(at, true);
-    areFinite &&= Number.isFinite(state.roundMemory[slot]);
+    areFinite &&= Math.abs(state.roundMemory[slot]) !== Number.POSITIVE_INFINITY;
     at += 8;
   });
   if (!areFinite) throw refusal('state', 'memories', 'finite numbers', 'NaN or infinity');

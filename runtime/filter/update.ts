@@ -7,7 +7,7 @@ import { FilterError } from './errors.ts';
 import { predictStandardised } from './forecast.ts';
 import { kernelOf } from './kernels.ts';
 import type { CommonModel, Model } from './model.ts';
-import { advanceRound, settleRound } from './round.ts';
+import { advanceRound, isFirstRound } from './round.ts';
 import { type FilterState, FOLDED, fadeTicks, MISSING, PASSED_OVER } from './state.ts';
 
 /**
@@ -45,11 +45,12 @@ function observe(model: Model, state: FilterState, c: number, tick: number, read
   const z = Math.min(state.high[c], Math.max(state.low[c], (y - model.mean[c]) / model.scale[c]));
   state.reading[c] = z;
   state.innovation[c] = z - state.predicted[c];
-  const isFar = isFarOff(model, state, c);
+  const limit = guardLimit(model, state, c);
+  const isFar = Math.abs(state.innovation[c]) > limit && !isUnguarded(model, state, c, tick);
   if (isFar && state.passed[c] < model.rejectMaxTicks) {
     state.passed[c]++;
     state.observed[c] = PASSED_OVER;
-    replace(model, state, c, tick);
+    replace(model, state, c, tick, state.predicted[c] + Math.min(limit, Math.max(-limit, state.innovation[c])));
     return;
   }
   state.observed[c] = FOLDED;
@@ -58,42 +59,42 @@ function observe(model: Model, state: FilterState, c: number, tick: number, read
   state.value[c] = z;
   const isFirst = state.started[c] === 0;
   state.started[c] = 1;
-  takeRound(model, state, c, tick, isFirst);
+  takeRound(model, state, c, tick, z);
   if (isFirst) kernelOf(model).settle(model, state.core, state, c);
   else kernelOf(model).advance(model, state.core, state, c);
 }
 
-function isFarOff(model: CommonModel, state: FilterState, c: number): boolean {
-  if (c >= model.signalCount || state.started[c] === 0) return false;
-  const limit = model.rejectSd * model.residualScale[c] * Math.sqrt(state.age[c] + 1);
-  return Math.abs(state.innovation[c]) > limit;
+function guardLimit(model: CommonModel, state: FilterState, c: number): number {
+  return model.rejectSd * model.residualScale[c] * Math.sqrt(state.age[c] + 1);
+}
+
+/** Inputs, first readings, and signals of whose round nothing is known yet. */
+function isUnguarded(model: CommonModel, state: FilterState, c: number, tick: number): boolean {
+  if (c >= model.signalCount || state.started[c] === 0) return true;
+  return model.round !== undefined && isFirstRound(model.round, state, c, tick);
 }
 
 function missed(model: Model, state: FilterState, c: number, tick: number): void {
   state.reading[c] = Number.NaN;
   state.innovation[c] = Number.NaN;
   state.observed[c] = MISSING;
-  replace(model, state, c, tick);
+  replace(model, state, c, tick, state.predicted[c]);
 }
 
-/** Folds the one-step forecast in, in the place of a reading. */
-function replace(model: Model, state: FilterState, c: number, tick: number): void {
+/** Folds the one-step forecast in, in the place of a reading; `kept` is what a round remembers of the tick. */
+function replace(model: Model, state: FilterState, c: number, tick: number, kept: number): void {
   if (state.age[c] < 2 * fadeTicks(model)) state.age[c]++;
   state.value[c] = state.predicted[c];
-  takeRound(model, state, c, tick, false);
+  takeRound(model, state, c, tick, kept);
   kernelOf(model).advance(model, state.core, state, c);
 }
 
 /** Works out what the kernel sees of a value, where that is not the value itself. */
-function takeRound(model: Model, state: FilterState, c: number, tick: number, isFirst: boolean): void {
+function takeRound(model: Model, state: FilterState, c: number, tick: number, kept: number): void {
   const { round } = model;
   if (round === undefined) return;
-  if (c >= model.signalCount) {
-    state.rest[c] = state.value[c];
-    return;
-  }
-  if (isFirst) settleRound(round, state.roundMemory, c, state.value[c]);
-  advanceRound(round, state, c, tick);
+  if (c < model.signalCount) advanceRound(round, state, c, tick, kept);
+  else state.rest[c] = state.value[c];
 }
 
 function checkTurn(model: CommonModel, state: FilterState, tick: number, readings: Float64Array): void {

@@ -3,7 +3,7 @@
  * and seasons, then runs over it and puts its own one-step forecast wherever no reading was folded in (zero innovation,
  * as on the gateway), and the map is learned once more from that. Spikes the guard would pass over are mended likewise.
  */
-import type { Model } from '@stillwell/runtime/filter';
+import type { Model, Round } from '@stillwell/runtime/filter';
 import { calibrate } from '../judge/calibrate.ts';
 import { replayPaths } from '../judge/replay.ts';
 import { floatModel, openCalibration } from '../quantise/float-model.ts';
@@ -13,10 +13,13 @@ import type { Filled } from './fill.ts';
 import { type LearnOutput, learn, learnAgain } from './learn.ts';
 import type { Moments } from './moments.ts';
 import { learnInput, type Prepared } from './prepare.ts';
+import { chooseRound, withoutRound } from './round.ts';
 
 /** What was learned. */
 export interface Taught {
   readonly choice: Choice;
+  /** Taken away before anything is learned; null: nothing. */
+  readonly round: Round | null;
   readonly learned: Learned;
   readonly calibrationMoments: Moments;
   /** The model that stood in for missing readings; null where too few are missing for a second pass. */
@@ -41,16 +44,17 @@ const PASS_COVERAGE = 0.9;
  * cost    one or two passes of learning, and one replay between them
  */
 export function teach(prepared: Prepared): Taught {
-  const first = learn(learnInput(prepared));
+  const round = chooseRound(learnInput(prepared, null), prepared.around.tickMs);
+  const first = learn(learnInput(prepared, round));
   const warnings = first.usesLongGaps
     ? ['Long gaps cover more than half of the history; they had to be bridged and learned from.']
     : [];
   const { choice, calibration: calibrationMoments, learned } = first;
   const isWhole = missingShare(prepared) < SECOND_PASS_SHARE;
-  const passing = isWhole ? null : passingModel(prepared, first);
-  const base = { choice, calibrationMoments, passing, warnings };
+  const passing = isWhole ? null : passingModel(prepared, first, round);
+  const base = { choice, round, calibrationMoments, passing, warnings };
   if (isWhole) return { ...base, learned };
-  return { ...base, learned: teachAgain(prepared, { choice, passing }, prepared.learnTicks) };
+  return { ...base, learned: teachAgain(prepared, base, prepared.learnTicks) };
 }
 
 /**
@@ -64,15 +68,33 @@ export function teach(prepared: Prepared): Taught {
  */
 export function teachAgain(
   prepared: Prepared,
-  { choice, passing }: Pick<Taught, 'choice' | 'passing'>,
+  { choice, round, passing }: Pick<Taught, 'choice' | 'round' | 'passing'>,
   ticks: number,
 ): Learned {
   const filled = passing === null ? prepared.filled : refill(prepared, passing, ticks);
-  return learnAgain({ ...learnInput(prepared), filled }, choice, ticks);
+  return learnAgain({ ...learnInput(prepared, round), filled }, choice, ticks);
 }
 
 /**
- * The history that `teachAgain` learns from.
+ * The history that `teachAgain` learns from: completed, and less its rounds.
+ *
+ * shapes  (nc) of (ticks of the series)
+ * units   standardised
+ * throws  FilterError if the model does not fit the series
+ * source  as `teach`
+ * cost    one replay where readings are missing
+ */
+export function completedHistory(
+  prepared: Prepared,
+  { round, passing }: Pick<Taught, 'round' | 'passing'>,
+  ticks: number,
+): Filled {
+  const filled = passing === null ? prepared.filled : refill(prepared, passing, ticks);
+  return round === null ? filled : withoutRound(filled, round, prepared.around.signalCount);
+}
+
+/**
+ * The completed history with its rounds in it.
  *
  * shapes  (nc) of (ticks of the series)
  * units   standardised
@@ -85,7 +107,7 @@ export function completedValues(
   { passing }: Pick<Taught, 'passing'>,
   ticks: number,
 ): readonly Float64Array[] {
-  return passing === null ? prepared.filled.values : refill(prepared, passing, ticks).values;
+  return completedHistory(prepared, { round: null, passing }, ticks).values;
 }
 
 function missingShare({ filled, around, learnTicks }: Prepared): number {
@@ -96,12 +118,12 @@ function missingShare({ filled, around, learnTicks }: Prepared): number {
   return missing / (around.signalCount * learnTicks);
 }
 
-function passingModel(prepared: Prepared, first: LearnOutput): Model {
+function passingModel(prepared: Prepared, first: LearnOutput, round: Round | null): Model {
   const { around, calm, learnTicks, calibrateTicks } = prepared;
   const { learned, choice } = first;
   const order = Math.min(PASS_ORDER, learned.bottleneck.carried.length);
   const factors = floatFactors(learned, { order, basisCount: Math.min(PASS_BASIS, around.horizon), hasOwn: false });
-  const surroundings = { ...around, bank: choice.bank, coverage: PASS_COVERAGE, boundsRate: 0.05 };
+  const surroundings = { ...around, bank: choice.bank, round, coverage: PASS_COVERAGE, boundsRate: 0.05 };
   const open = floatModel(
     factors,
     surroundings,

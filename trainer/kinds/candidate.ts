@@ -12,7 +12,7 @@ import type { Calibration, Surroundings } from '../quantise/float-model.ts';
 import type { Split } from '../requirements.ts';
 
 /** Parts of a bundle document that belong to the kind alone. */
-export type KindSections = Pick<Bundle, 'kind' | 'linear'>;
+export type KindSections = Pick<Bundle, 'kind' | 'linear' | 'round' | 'dense' | 'features' | 'switched' | 'driven'>;
 
 /** What a kind is tried on. */
 export interface Attempt {

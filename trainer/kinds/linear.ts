@@ -1,6 +1,8 @@
 /**
  * The linear kind as a candidate: the largest bank and state that fit the bytes, unless smaller ones do as well.
  */
+
+import type { Round } from '@stillwell/runtime/filter';
 import { TrainError } from '../errors.ts';
 import { bankName } from '../identify/bank.ts';
 import { chooseSize, sizeBytes } from '../identify/order.ts';
@@ -44,7 +46,20 @@ function sectionsOf({ taught }: Attempt, learned: Learned, size: Size): KindSect
   const { decays, resonators, lags, hasLevel } = taught.choice.bank;
   const level = hasLevel === true ? { level: true as const } : {};
   const { tensors } = roundedFactors(learned, size);
-  return { kind: 'linear', linear: { decays, resonators, lags, ...level, ...tensors } };
+  return { kind: 'linear', ...roundSection(taught.round), linear: { decays, resonators, lags, ...level, ...tensors } };
+}
+
+/**
+ * The round as a document holds it, for kinds that build on the linear one.
+ *
+ * shapes  weight (ny)
+ * units   ticks
+ * throws  nothing
+ * source  none
+ * cost    trivial
+ */
+export function roundSection(round: Round | null): Pick<KindSections, 'round'> {
+  return round === null ? {} : { round: { ticks: round.ticks, weight: Array.from(round.weight) } };
 }
 
 /**

@@ -2,7 +2,7 @@
  * A model to compute with, from learned factors, before there is a bundle: for calibration, and for the audit.
  */
 import { CROSSING_KNOTS } from '@stillwell/protocol';
-import type { CommonModel, LinearModel } from '@stillwell/runtime/filter';
+import type { CommonModel, LinearModel, Round } from '@stillwell/runtime/filter';
 import { type Bank, featureCount } from '../identify/bank.ts';
 import type { Scaling } from '../identify/scaling.ts';
 import type { Season } from '../identify/season.ts';
@@ -21,6 +21,8 @@ export interface Surroundings {
   readonly coverage: number;
   readonly boundsRate: number;
   readonly warmupTicks: number;
+  /** For kinds whose kernel sees what is left of a round; null: none. */
+  readonly round: Round | null;
 }
 
 /** What calibration finds; `OPEN` before it has run. */
@@ -52,10 +54,11 @@ export interface Calibration {
  * cost    copies
  */
 export function floatModel(factors: Factors, around: Surroundings, calibration: Calibration): LinearModel {
-  const { bank } = around;
+  const { bank, round } = around;
   return {
     kind: 'linear',
     ...commonPart(around, calibration),
+    ...(round === null ? {} : { round }),
     featureCount: featureCount(bank),
     order: factors.order,
     basisCount: factors.basisCount,

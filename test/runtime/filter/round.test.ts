@@ -46,14 +46,44 @@ describe('the round', () => {
     const { path } = run(withRound([0.5, 0]), readings);
     // Slow route: the rest is made beforehand and filtered by the plain model, its clips out of the way.
     const free = { ...plain, clipLow: plain.clipLow.map(() => -1e9), clipHigh: plain.clipHigh.map(() => 1e9) };
-    const z = (n: number): number => (readings[Math.max(0, n)]![0]! - plain.mean[0]!) / plain.scale[0]!;
+    const z = (n: number): number => (readings[n]![0]! - plain.mean[0]!) / plain.scale[0]!;
+    // In the first round, what is not known of the one before counts as the value now.
     const rest = readings.map((row, n) =>
-      Float64Array.of(plain.mean[0]! + plain.scale[0]! * (z(n) - 0.5 * z(n - W)), row[1]!, row[2]!),
+      Float64Array.of(plain.mean[0]! + plain.scale[0]! * (z(n) - 0.5 * z(n < W ? n : n - W)), row[1]!, row[2]!),
     );
     const slow = run(free, rest).path;
     for (let h = 1; h <= 7; h++) {
       const expected = slow[h - 1]! + plain.scale[0]! * 0.5 * z(3 * W - 1 + h - W);
       expect(path[h - 1]).toBeCloseTo(expected, 9);
+    }
+  });
+
+  test('a spike shows a round later once at most, cut to what the guard lets through, and then never again', () => {
+    const guarded = mute(withRound([1, 0], { ...plain, rejectSd: 10, rejectMaxTicks: 3 }));
+    const state = createState(guarded);
+    const next = new Float64Array(3);
+    const off: number[] = [];
+    for (let n = 0; n < 6 * W; n++) {
+      predictNext(guarded, state, next);
+      off.push(Math.abs(next[0]! - 10));
+      update(guarded, state, n, Float64Array.of(n === 2 * W + 5 ? 18 : 10, 13, 16));
+    }
+    const limit = 10 * 0.2 * plain.scale[0]!;
+    expect(off[3 * W + 5]).toBeCloseTo(limit, 9);
+    expect(Math.max(...off.slice(4 * W))).toBeLessThan(1e-9);
+  });
+
+  test('in the first round no reading is passed over, and the last value is the forecast', () => {
+    const guarded = mute(withRound([1, 0], { ...plain, rejectSd: 10, rejectMaxTicks: 3 }));
+    const state = createState(guarded);
+    const next = new Float64Array(3);
+    for (let n = 0; n < W; n++) {
+      if (n > 1) {
+        predictNext(guarded, state, next);
+        expect(next[0]).toBeCloseTo((n - 1) % 2 === 0 ? 10 : 16, 9);
+      }
+      update(guarded, state, n, Float64Array.of(n % 2 === 0 ? 10 : 16, 13, 16));
+      expect(state.observed[0]).toBe(1);
     }
   });
 

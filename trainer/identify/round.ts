@@ -1,0 +1,135 @@
+/**
+ * Whether taking away what a signal did a round ago (a period, a week) makes it easier to forecast, by rolling origin on each
+ * signal's own past. A week whose days differ is too long for resonators and lags; taken away, the rest has no week left.
+ */
+import { MAX_ROUND_TICKS } from '@stillwell/protocol';
+import type { Round } from '@stillwell/runtime/filter';
+import { type Bank, designBank, featureCount, settlingTicks } from './bank.ts';
+import { partition } from './blocks.ts';
+import { type OwnTrial, settleOwn, tryOwn } from './choose-own.ts';
+import type { Filled } from './fill.ts';
+import { type Fold, foldWeights, gainsSurely, geometric, sumOver } from './fold-errors.ts';
+import type { LearnInput } from './learn.ts';
+import { aboutMeans, addMoments, pickMoments } from './moment-sets.ts';
+import { gatherMoments } from './moments.ts';
+import { trialSteps } from './step-groups.ts';
+
+const WEEK_MS = 7 * 86_400_000;
+/** The learning part must hold this many rounds: one to take away, and two to learn what is left. */
+const LEAST_ROUNDS = 3;
+/** A plant whose rounds wander is better served by half of the last one. */
+const WEIGHTS = [1, 0.5] as const;
+/** A round must gain this share of the squared error surely: it costs memory, and doubles what is noise in the last one. */
+const ROUND_GAIN = 0.02;
+const ROUND_CHANCE = 0.05;
+/** Penalties that tell whether a round pays; the proper choice comes after. */
+const PENALTIES = [0.01, 0.1, 1] as const;
+/** Signals beyond these are not tried: the time is better spent on their map. */
+const MOST_SIGNALS = 32;
+
+/**
+ * The round that pays, or null.
+ *
+ * shapes  weight (ny)
+ * units   ticks
+ * throws  TrainError 'fit' from the solves
+ * source  seasonal differencing chosen by rolling origin: Tashman (2000)
+ * cost    ny × rounds × weights gatherings of one signal's moments, and their own solves
+ */
+export function chooseRound(input: LearnInput, tickMs: number): Round | null {
+  const rounds = roundsWorthTrying(input, tickMs);
+  if (rounds.length === 0 || input.signalCount > MOST_SIGNALS) return null;
+  const skip = Math.max(...rounds);
+  const signals = Array.from({ length: input.signalCount }, (_, i) => i);
+  const without = signals.map((i) => ownErrors(input, i, null, skip));
+  let best: { round: Round; gain: number } | null = null;
+  for (const ticks of rounds) {
+    let gain = 0;
+    const weight = Float64Array.from(signals, (i) => {
+      const tried = WEIGHTS.map((w) => ({ w, ...ownErrors(input, i, { ticks, weight: Float64Array.of(w) }, skip) }));
+      const plain = without[i];
+      const mean = (errors: readonly number[]): number => geometric(errors, plain.weights);
+      const [first, second] = tried;
+      const least = mean(second.errors) < mean(first.errors) ? second : first;
+      if (!gainsSurely(least.errors, plain.errors, ROUND_GAIN, plain.weights, ROUND_CHANCE)) return 0;
+      gain += Math.log(mean(plain.errors) / mean(least.errors));
+      return least.w;
+    });
+    if (gain > (best?.gain ?? 0)) best = { round: { ticks, weight }, gain };
+  }
+  return best?.round ?? null;
+}
+
+function roundsWorthTrying(input: LearnInput, tickMs: number): number[] {
+  const { horizon, learnTicks, periodTicks, otherPeriods } = input;
+  const week = WEEK_MS / tickMs;
+  return [...new Set([periodTicks, week, ...otherPeriods])].filter(
+    (ticks) =>
+      Number.isInteger(ticks) &&
+      ticks > 1 &&
+      ticks >= horizon &&
+      ticks <= MAX_ROUND_TICKS &&
+      learnTicks >= LEAST_ROUNDS * ticks,
+  );
+}
+
+/** Errors by fold of one signal's own map on what is left of it, from the origins after `skip` ticks. */
+function ownErrors(
+  input: LearnInput,
+  signal: number,
+  round: Round | null,
+  skip: number,
+): { readonly errors: number[]; readonly weights: number[] } {
+  const { filled, horizon, learnTicks, calibrateTicks, periodTicks } = input;
+  const wish = { periodTicks, otherPeriods: [], horizon, learnTicks, channelCount: 1 };
+  const bank: Bank = { ...designBank(wish), lags: [], hasLevel: false };
+  const { values, inLongGap } = restOf(filled, round, signal);
+  const settle = skip + Math.min(settlingTicks(bank), Math.floor(learnTicks / 8));
+  const cut = partition(learnTicks, calibrateTicks, settle, horizon, inLongGap);
+  const blocks = cut.groups.flat();
+  const moments = gatherMoments({ values, signalCount: 1, bank, horizon }, blocks);
+  const trials = trialSteps(horizon);
+  const features = featureCount(bank);
+  const layout = { channelCount: 1, signalCount: 1, featureCount: features, steps: horizon };
+  const kept = Array.from({ length: features }, (_, f) => f);
+  const groups = cut.groups.flatMap((own) => {
+    const parts = moments.filter((_, k) => own.includes(blocks[k]));
+    return parts.length > 0 ? [pickMoments(addMoments(parts), layout, kept, trials.steps)] : [];
+  });
+  const folds: Fold[] = [];
+  for (let g = Math.max(1, Math.min(3, groups.length - 2)); g < groups.length; g++) {
+    folds.push({ learn: aboutMeans(addMoments(groups.slice(0, g))), judge: groups[g] });
+  }
+  const weights = foldWeights(folds);
+  const trial: OwnTrial = { folds, weights, layout: { ...layout, steps: trials.steps.length }, groups: trials.groups };
+  const tried = tryOwn(trial, kept, PENALTIES);
+  const { errors } = settleOwn(trial, () => tried);
+  return { errors: sumOver(errors, trials.steps.length, () => true), weights };
+}
+
+function restOf(filled: Filled, round: Round | null, signal: number): Pick<Filled, 'values' | 'inLongGap'> {
+  const alone = { ...filled, values: [filled.values[signal]] };
+  return round === null ? alone : withoutRound(alone, round, 1);
+}
+
+/**
+ * A completed history less its rounds, as the filter's kernel sees it: before the first round the first value stands for the
+ * past. A gap shows twice, where it is and a round later.
+ *
+ * shapes  filled as Filled, its first `signalCount` channels signals
+ * units   standardised
+ * throws  nothing
+ * source  runtime/filter/round.ts
+ * cost    O(ny T)
+ */
+export function withoutRound(filled: Filled, { ticks, weight }: Round, signalCount: number): Filled {
+  const values = filled.values.map((z, c) => {
+    const w = c < signalCount ? weight[c] : 0;
+    return w === 0 ? z : z.map((value, t) => value - w * z[Math.max(0, t - ticks)]);
+  });
+  const inLongGap = filled.inLongGap.slice();
+  for (let t = ticks; t < inLongGap.length; t++) {
+    if (filled.inLongGap[t] === 0) inLongGap[t] = filled.inLongGap[t - ticks];
+  }
+  return { ...filled, values, inLongGap };
+}
