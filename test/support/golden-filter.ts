@@ -5,7 +5,7 @@ import {
   crossing,
   forecastPath,
   intervalOf,
-  type LinearModel,
+  type Model,
   predictNext,
   saveBounds,
   saveState,
@@ -15,7 +15,7 @@ import {
 
 /** Arrays stand as lists; readings are lattice indices by tick and channel, null where missing. */
 export interface GoldenInput {
-  readonly model: Readonly<Record<string, number | string | readonly number[]>>;
+  readonly model: Readonly<Record<string, number | string | boolean | readonly number[]>>;
   readonly firstTick: number;
   readonly readings: readonly (readonly (number | null)[])[];
 }
@@ -33,12 +33,12 @@ export interface GoldenOutput {
 }
 
 /** The model as the filter takes it. */
-export function modelOf(input: GoldenInput): LinearModel {
+export function modelOf(input: GoldenInput): Model {
   const entries = Object.entries(input.model).map(([name, value]) => {
     if (!Array.isArray(value)) return [name, value];
     return [name, name === 'lags' ? Int32Array.from(value) : Float64Array.from(value)];
   });
-  return Object.fromEntries(entries) as unknown as LinearModel;
+  return Object.fromEntries(entries) as unknown as Model;
 }
 
 const hex = (values: Float64Array): string => {

@@ -4,7 +4,13 @@
  */
 import type { Bundle, BundleChannel, ResponseTensors, Tensor } from '@stillwell/protocol';
 import { ARITHMETIC, BUNDLE_FORMAT } from '@stillwell/protocol';
-import { type FilterState, type LinearCore, type LinearModel, modelFromBundle } from '@stillwell/runtime/filter';
+import {
+  type CommonModel,
+  type FilterState,
+  type LinearCore,
+  type LinearModel,
+  modelFromBundle,
+} from '@stillwell/runtime/filter';
 
 /** What may be chosen; everything has a default. */
 export interface ModelChoice {
@@ -98,7 +104,7 @@ export function syntheticBundle(choice: ModelChoice = {}): Bundle {
         ? { own: integerTensor('i8', ny * r, ownWidth, integers(ny * r * ownWidth, 127), rows(ny * r, 1e-3 / 127)) }
         : {}),
     },
-    ...(choice.response === true ? { response: syntheticResponse(ny, nc - ny, d, horizon, integers) } : {}),
+    ...(choice.response === true ? { response: syntheticResponse(ny, nc - ny, d, F, horizon, integers) } : {}),
     seasonal: {
       periodTicks: choice.seasonalPeriod ?? 24,
       table: integerTensor('i8', ny, bins, integers(ny * bins, 127), rows(ny, 0.5 / 127)),
@@ -153,19 +159,20 @@ function syntheticResponse(
   ny: number,
   nu: number,
   d: number,
+  features: number,
   horizon: number,
   integers: (count: number, size: number) => number[],
 ): ResponseTensors {
   const rows = (count: number, scale: number): number[] => Array.from({ length: count }, () => scale);
   const looks = horizon > 1 ? [1, horizon] : [1];
-  const width = d + ny * looks.length;
+  const width = d + ny * looks.length + features;
   return {
     inputs: Array.from({ length: nu }, (_, u) => u),
     decays: [0.5, 0.8, 0.95],
     delay: Array.from({ length: ny * nu }, (_, k) => k % Math.min(3, horizon)),
     gain: integerTensor('i16', ny, nu * 5, integers(ny * nu * 5, 32767), rows(ny, 0.5 / 32767)),
     looks,
-    readout: integerTensor('i16', nu * 2, width, integers(nu * 2 * width, 32767), rows(nu * 2, 0.3 / 32767)),
+    readout: integerTensor('i16', nu * 2, width, integers(nu * 2 * width, 32767), rows(nu * 2, 0.1 / 32767)),
     basis: integerTensor('i8', nu * 2, horizon, integers(nu * 2 * horizon, 127), rows(nu * 2, 1 / 127)),
     surprise: Array.from({ length: nu }, () => 0.5),
   };
@@ -180,7 +187,7 @@ export function syntheticModel(choice: ModelChoice = {}): LinearModel {
  * Readings that a plant of that model might give: a daily swing, a slow wander and noise, on the sensor's lattice.
  * `missing` is the share of readings left out at random.
  */
-export function syntheticReadings(model: LinearModel, ticks: number, seed: number, missing = 0): Float64Array[] {
+export function syntheticReadings(model: CommonModel, ticks: number, seed: number, missing = 0): Float64Array[] {
   const random = seededNumbers(seed);
   const wander = new Float64Array(model.channelCount);
   return Array.from({ length: ticks }, (_, n) =>

@@ -6,10 +6,10 @@ import { describe, expect, test } from 'vitest';
 import { type GoldenInput, type GoldenOutput, goldenRun } from '../../support/golden-filter.ts';
 
 const folder = fileURLToPath(new URL('../../vectors/', import.meta.url));
-const files = readdirSync(folder).filter((file) => /^filter-linear-\d+\.json$/.test(file));
+const files = readdirSync(folder).filter((file) => /^filter-(linear|dense)-\d+\.json$/.test(file));
 
-test('there is a run for today’s arithmetic', () => {
-  expect(files).toContain(`filter-linear-${ARITHMETIC}.json`);
+test.each(['linear', 'dense'])('there is a run for today’s arithmetic, %s', (kind) => {
+  expect(files).toContain(`filter-${kind}-${ARITHMETIC}.json`);
 });
 
 describe.each(files)('%s', (file) => {

@@ -6,13 +6,15 @@ import {
   forecastPath,
   intervalOf,
   type LinearModel,
+  type Model,
   predictNext,
   trackBounds,
   update,
 } from '@stillwell/runtime/filter';
 import fc from 'fast-check';
 import { describe, expect, test } from 'vitest';
-import { linearCore, seededNumbers, syntheticModel } from '../../support/models.ts';
+import { syntheticDense } from '../../support/dense-models.ts';
+import { seededNumbers, syntheticModel } from '../../support/models.ts';
 
 const HOSTILE = [
   Number.NaN,
@@ -41,26 +43,17 @@ const strayed = (parts: readonly Float64Array[]): number => {
   return sum;
 };
 
-const survive = (model: LinearModel, ticks: number, next: (n: number, c: number) => number): void => {
+/** Every array of numbers that a kind computes with. */
+const buffersOf = (core: object): Float64Array[] => Object.values(core).filter((part) => part instanceof Float64Array);
+
+const survive = (model: Model, ticks: number, next: (n: number, c: number) => number): void => {
   const state = createState(model);
   const bounds = createBounds(model);
   const size = model.signalCount * model.horizon;
   const [median, lower, upper] = [new Float64Array(size), new Float64Array(size), new Float64Array(size)];
   const predicted = new Float64Array(model.channelCount);
   const readings = new Float64Array(model.channelCount);
-  const watched = [
-    state.value,
-    linearCore(state).memory,
-    linearCore(state).ring,
-    linearCore(state).features,
-    state.x,
-    linearCore(state).coefficients,
-    median,
-    lower,
-    upper,
-    predicted,
-    bounds.radius,
-  ];
+  const watched = [state.value, ...buffersOf(state.core), median, lower, upper, predicted, bounds.radius];
   for (let n = 0; n < ticks; n++) {
     for (let c = 0; c < readings.length; c++) readings[c] = next(n, c);
     update(model, state, n, readings);
@@ -92,19 +85,33 @@ describe('finite, always', () => {
     readout: model.readout.map((w) => w * 1e50),
     horizonBasis: model.horizonBasis.map((w) => w * 1e50),
   };
+  const dense = syntheticDense({ seed: 3, inputs: ['valve', 'set'], horizon: 6, basis: 3, lags: [1, 7], level: true });
+  const wildDense: Model = {
+    ...dense,
+    poles: dense.poles.map((pole, k) => (k < 2 * dense.pairCount ? pole : 1 - 2 ** -53)),
+    drive: dense.drive.map((w) => w * 1e50),
+    readout: dense.readout.map((w) => w * 1e50),
+    horizonBasis: dense.horizonBasis.map((w) => w * 1e50),
+    lagged: dense.lagged.map((w) => w * 1e50),
+  };
 
   test.each([
     ['tame', model],
     ['wild', wild],
+    ['dense, tame', dense],
+    ['dense, wild', wildDense],
   ] as const)('%s weights, half a million hostile readings', (_, at) => {
     const random = seededNumbers(99);
     survive(at, 125_000, () => HOSTILE[Math.floor(random() * HOSTILE.length)]);
   });
 
-  test('any float64 pattern', () => {
+  test.each([
+    ['linear', model],
+    ['dense', dense],
+  ] as const)('any float64 pattern, %s', (_, at) => {
     fc.assert(
       fc.property(fc.array(fc.double(), { minLength: 4, maxLength: 400 }), (values) => {
-        survive(model, Math.floor(values.length / 4), (n, c) => values[4 * n + c]);
+        survive(at, Math.floor(values.length / 4), (n, c) => values[4 * n + c]);
       }),
       { seed: 20_240_612, numRuns: 200 },
     );
