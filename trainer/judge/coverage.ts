@@ -34,7 +34,8 @@ export class Coverage {
 
 /**
  * Half-width that holds the stated share of future errors, from errors of the past. Errors at a long step repeat themselves
- * from tick to tick; the fewer of them stand for themselves, the further out the half-width is taken.
+ * from tick to tick and their size drifts; the fewer of them stand for themselves, the further out the half-width is taken.
+ * A margin, and on the safe side where nothing drifts.
  *
  * shapes  sizes (n) absolute errors, overwritten by sorting; independent: how many of them stand for themselves
  * units   as the errors
