@@ -109,7 +109,7 @@ export interface ResponseTensors {
   readonly gain: Tensor;
   /** (S) steps of the path that expectations of inputs are read from, rising. */
   readonly looks: readonly number[];
-  /** (np·r × (d + ny·S)) of the predictive state, then of each signal's path less its value now. */
+  /** (np·r × (d + ny·S + F)) of the state, each signal's path less its value now, the input's own features, if the kind has a bank. */
   readonly readout: Tensor;
   /** (np·r × H): expected input(t+h) = input(t) + Σ_k basis[k, h-1] coefficient k. */
   readonly basis: Tensor;

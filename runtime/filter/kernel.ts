@@ -49,6 +49,8 @@ export interface Kernel<M extends CommonModel, C extends Core> {
   advance(model: M, core: C, state: FilterState, channel: number): void;
   /** Once a tick after all channels, and after a restore (`state.tick` ≥ 0): everything that follows from the memories. */
   refresh(model: M, core: C, state: FilterState): void;
+  /** What each channel's own past looks like, (nc × count), for kinds that keep it; absent: they do not. */
+  readonly own?: { count(model: M): number; features(core: C): Float64Array };
   /**
    * Path of every signal for steps 1 … `steps` ≤ H, before fading and clipping: `out` (ny × steps), step h at i·steps + h − 1.
    * `plan` (nu × H), NaN where an input is not planned; null: no plan. One-step predictions never see a plan.

@@ -215,5 +215,6 @@ export const linearKernel: Kernel<LinearModel, LinearCore> = {
   settle: (_model, core, state, channel) => settleChannel(core.bank, core.memory, core.ring, state.rest, channel),
   advance: (model, core, state, channel) => advanceChannel(model, core.bank, core.memory, state.rest, channel),
   refresh: refreshLinear,
+  own: { count: (model) => model.featureCount, features: (core) => core.features },
   paths: linearPaths,
 };

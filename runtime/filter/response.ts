@@ -3,21 +3,23 @@
  * inputs to come; so only the surprise of a plan acts, plan less what was expected, and a plan that says no more than
  * was expected changes nothing.
  *
- *   expected     û(t+h) = u(t) + Σ_k basis[k, h−1] · (readout · q)_k      q: predictive state, then path − now at some steps
+ *   expected     û(t+h) = u(t) + Σ_k basis[k, h−1] · (readout · q)_k      q: predictive state, path − now at some steps,
+ *                the input's own features where the kind keeps them
  *   surprise     s(h) = plan(t+h) − û(t+h); 0 before the plan begins, its last value behind its end
  *   filters      s(h) itself; e_b(h) = a_b e_b(h−1) + (1 − a_b) s(h), e_b(0) = 0; and Σ_{k ≤ h} s(k) / H, for what fills up
  *   response     path_i(t+h) += Σ gain · filter(h − delay)
  *
  * A linear stage behind any kind of model; a kind that carries plans through its own recursion has none.
  */
-import type { CommonModel } from './model.ts';
+import { kernelOf } from './kernels.ts';
+import type { CommonModel, Model } from './model.ts';
 import { requireEach, requireField, requireLength, requireWeights } from './requirement.ts';
 import type { FilterState } from './state.ts';
 
 /**
  * The response to plans, ready to compute with.
  *
- * shapes  np planned inputs, nb poles, r curves, S looks, ny signals, d order, H horizon; row-major
+ * shapes  np planned inputs, nb poles, r curves, S looks, ny signals, d order, F features a channel, H horizon; row-major
  * units   standardised
  */
 export interface ResponseModel {
@@ -31,7 +33,7 @@ export interface ResponseModel {
   readonly gain: Float64Array;
   /** (S) steps at which the paths are looked at, ascending. */
   readonly looks: Int32Array;
-  /** (np·r × (d + ny·S)) */
+  /** (np·r × (d + ny·S + F)) */
   readonly readout: Float64Array;
   /** (np·r × H) */
   readonly basis: Float64Array;
@@ -41,7 +43,7 @@ export interface ResponseModel {
 
 /** Buffers of one state; see `ResponseModel`. */
 export interface ResponseBuffers {
-  /** (d + ny·S) */
+  /** (d + ny·S + F) */
   readonly seen: Float64Array;
   /** (r) */
   readonly coefficients: Float64Array;
@@ -49,6 +51,15 @@ export interface ResponseBuffers {
   readonly expected: Float64Array;
   readonly surprise: Float64Array;
   readonly filtered: Float64Array;
+}
+
+/**
+ * Features of a channel's own past that the model keeps; 0 in kinds without.
+ *
+ * units   a count
+ */
+export function ownFeatureCount(model: Model): number {
+  return kernelOf(model).own?.count(model) ?? 0;
 }
 
 /** What is looked at is held within this, so that no past whatever makes an expectation that is not finite. */
@@ -59,15 +70,20 @@ const SEEN_LIMIT = 1000;
  *
  * shapes  as ResponseBuffers
  */
-export function createResponseBuffers(model: CommonModel, response: ResponseModel): ResponseBuffers {
+export function createResponseBuffers(model: Model, response: ResponseModel): ResponseBuffers {
   const { horizon: H } = model;
   return {
-    seen: new Float64Array(model.order + model.signalCount * response.looks.length),
+    seen: new Float64Array(seenCount(response, H)),
     coefficients: new Float64Array(curveCount(response, H)),
     expected: new Float64Array(H),
     surprise: new Float64Array(H),
     filtered: new Float64Array(H),
   };
+}
+
+/** Numbers that expectations are read from. */
+function seenCount(response: ResponseModel, horizon: number): number {
+  return response.readout.length / (response.inputs.length * curveCount(response, horizon));
 }
 
 function curveCount({ basis, inputs }: ResponseModel, horizon: number): number {
@@ -79,7 +95,7 @@ function curveCount({ basis, inputs }: ResponseModel, horizon: number): number {
  *
  * throws  FilterError 'model'
  */
-export function checkResponse(model: CommonModel, response: ResponseModel): void {
+export function checkResponse(model: Model, response: ResponseModel): void {
   const { inputs, decays, delay, gain, looks, readout, basis, surprise } = response;
   const { signalCount: ny, horizon: H } = model;
   const np = inputs.length;
@@ -93,7 +109,7 @@ export function checkResponse(model: CommonModel, response: ResponseModel): void
   requireLength(gain, 'response.gain', ny * np * (decays.length + 2));
   const r = curveCount(response, H);
   requireField(Number.isInteger(r) && r > 0, 'response.basis', 'as many curves for each input', basis.length);
-  requireLength(readout, 'response.readout', np * r * (model.order + ny * looks.length));
+  requireLength(readout, 'response.readout', np * r * (model.order + ny * looks.length + ownFeatureCount(model)));
   requireLength(surprise, 'response.surprise', np);
   requireEach(surprise, 'response.surprise', (value) => value >= 0 && value <= 1e60, 'a finite number, zero or more');
   for (const name of ['gain', 'readout', 'basis'] as const) requireWeights(response[name], `response.${name}`);
@@ -110,7 +126,7 @@ function ascending(values: Int32Array, name: string, low: number, high: number):
 /**
  * Notes what inputs are expected from: the predictive state, and how far the paths lead from now.
  *
- * shapes  paths (ny × H) as made without a plan; fills buffers.seen
+ * shapes  paths (ny × H) as made without a plan; fills buffers.seen but for the last F
  * cost    O(d + ny · S); allocates nothing
  */
 export function lookAtPaths(
@@ -127,23 +143,47 @@ export function lookAtPaths(
   for (let i = 0; i < model.signalCount; i++) {
     for (let k = 0; k < S; k++) seen[d + i * S + k] = paths[i * H + response.looks[k] - 1] - state.value[i];
   }
-  for (let k = 0; k < seen.length; k++) seen[k] = Math.min(SEEN_LIMIT, Math.max(-SEEN_LIMIT, seen[k]));
+  for (let k = 0; k < d + model.signalCount * S; k++) seen[k] = Math.min(SEEN_LIMIT, Math.max(-SEEN_LIMIT, seen[k]));
 }
 
 /**
- * What the past says of one planned input; after `lookAtPaths`.
+ * Notes the own features of one planned input; after `lookAtPaths`.
  *
- * shapes  which 0 … np − 1; fills buffers.expected (H)
- * units   standardised, inside the input's clips
- * cost    O(r · (d + ny · S + H)); allocates nothing
+ * shapes  which 0 … np − 1; fills the last F of buffers.seen
+ * cost    O(F); allocates nothing
  */
-export function expectInput(
-  model: CommonModel,
+export function lookAtInput(
+  model: Model,
   response: ResponseModel,
   buffers: ResponseBuffers,
   state: FilterState,
   which: number,
 ): void {
+  const own = kernelOf(model).own;
+  if (own === undefined) return;
+  const { seen } = buffers;
+  const F = own.count(model);
+  const features = own.features(state.core);
+  const from = (model.signalCount + response.inputs[which]) * F;
+  const at = seen.length - F;
+  for (let k = 0; k < F; k++) seen[at + k] = Math.min(SEEN_LIMIT, Math.max(-SEEN_LIMIT, features[from + k]));
+}
+
+/**
+ * What the past says of one planned input; after `lookAtPaths`.
+ *
+ * shapes  which 0 … np − 1; fills buffers.expected (H), and the last F of buffers.seen
+ * units   standardised, inside the input's clips
+ * cost    O(r · (d + ny · S + F + H)); allocates nothing
+ */
+export function expectInput(
+  model: Model,
+  response: ResponseModel,
+  buffers: ResponseBuffers,
+  state: FilterState,
+  which: number,
+): void {
+  lookAtInput(model, response, buffers, state, which);
   const { seen, coefficients, expected } = buffers;
   const { readout, basis } = response;
   const H = model.horizon;
@@ -174,7 +214,7 @@ export function expectInput(
  * cost    O(np · nb · ny · H); allocates nothing
  */
 export function respond(
-  model: CommonModel,
+  model: Model,
   response: ResponseModel,
   buffers: ResponseBuffers,
   state: FilterState,

@@ -73,10 +73,11 @@ function momentsOf(
       change[s] = future[from + steps[s] - 1] - now[n * planned + which];
       energy += change[s] * change[s];
     }
+    const row = (n * planned + which) * q;
     for (let a = 0; a < q; a++) {
-      const x = seen[n * q + a];
+      const x = seen[row + a];
       if (x === 0) continue;
-      for (let b = 0; b <= a; b++) gram[a * q + b] += x * seen[n * q + b];
+      for (let b = 0; b <= a; b++) gram[a * q + b] += x * seen[row + b];
       for (let s = 0; s < steps.length; s++) right[a * steps.length + s] += x * change[s];
     }
   }

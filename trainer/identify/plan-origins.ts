@@ -2,7 +2,7 @@
  * Replayed origins for learning what plans of the inputs bring: at each, what the model saw, what the planned inputs then
  * did, and what its path without a plan missed. Thinned, since neighbours say nearly the same.
  */
-import type { Model, ResponseModel } from '@stillwell/runtime/filter';
+import { lookAtInput, type Model, ownFeatureCount, type ResponseModel } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
 import { replayPaths } from '../judge/replay.ts';
 import type { TickSpan } from '../span.ts';
@@ -19,7 +19,7 @@ export interface PlanOrigins {
   readonly looks: readonly number[];
   /** (n) index into the series */
   readonly at: Int32Array;
-  /** (n × q) */
+  /** (n × np·q) for each input: state, paths, its own features */
   readonly seen: Float64Array;
   readonly seenCount: number;
   /** (n × np) value at the origin */
@@ -66,13 +66,13 @@ export function gatherPlanOrigins(
   const looking = { ...model, response: lookingResponse(model, planned, looks) };
   const inputs = planned.map((u) => standardised(model, series, ny + u));
   const signals = Array.from({ length: ny }, (_, i) => clipped(model, series.values[i], i));
-  const seenCount = model.order + ny * looks.length;
+  const seenCount = model.order + ny * looks.length + ownFeatureCount(model);
   const out: PlanOrigins = {
     count: indices.length,
     steps,
     looks,
     at: indices,
-    seen: new Float64Array(indices.length * seenCount),
+    seen: new Float64Array(indices.length * np * seenCount),
     seenCount,
     now: new Float64Array(indices.length * np),
     future: new Float64Array(indices.length * np * H),
@@ -87,8 +87,11 @@ export function gatherPlanOrigins(
     ({ at, state, median }) => {
       if (next >= indices.length || at !== indices[next]) return;
       const n = next++;
-      out.seen.set(state.response?.seen ?? [], n * seenCount);
       inputs.forEach((z, k) => {
+        if (state.response !== null) {
+          lookAtInput(looking, looking.response, state.response, state, k);
+          out.seen.set(state.response.seen, (n * np + k) * seenCount);
+        }
         out.now[n * np + k] = state.value[ny + planned[k]];
         out.future.set(z.subarray(at + 1, at + 1 + H), (n * np + k) * H);
       });
@@ -155,7 +158,7 @@ function lookingResponse(model: Model, planned: readonly number[], looks: readon
     delay: new Int32Array(ny * np),
     gain: new Float64Array(ny * np * 2),
     looks: Int32Array.from(looks),
-    readout: new Float64Array(np * (model.order + ny * looks.length)),
+    readout: new Float64Array(np * (model.order + ny * looks.length + ownFeatureCount(model))),
     basis: new Float64Array(np * H),
     surprise: new Float64Array(np),
   };

@@ -43,7 +43,7 @@ export function surprisesOf(
         let sum = 0;
         const row = (p * curves + k) * q;
         for (let j = 0; j < q; j++)
-          sum += readout[row + j] * Math.min(SEEN_LIMIT, Math.max(-SEEN_LIMIT, seen[n * q + j]));
+          sum += readout[row + j] * Math.min(SEEN_LIMIT, Math.max(-SEEN_LIMIT, seen[(n * np + p) * q + j]));
         coefficients[k] = sum;
       }
       const c = ny + planned[p];

@@ -56,18 +56,18 @@ export function responseDecays(horizon: number): number[] {
 /**
  * Bytes of the document to keep free for a response, at most.
  *
- * shapes  none
+ * shapes  features of a channel's own past
  * units   bytes
  * throws  nothing
  * source  none
  * cost    trivial
  */
-export function responseRoom(signalCount: number, planned: number, horizon: number): number {
+export function responseRoom(signalCount: number, planned: number, horizon: number, features: number): number {
   if (planned === 0) return 0;
   const filters = responseDecays(horizon).length + 2;
   const curves = curvesFor(planned, horizon);
   // Names, scales and lists of whole numbers are rounded up.
-  const seen = MOST_STATES + signalCount * looksAt(horizon, signalCount).length;
+  const seen = MOST_STATES + signalCount * looksAt(horizon, signalCount).length + features;
   const readout = planned * curves * (2 * seen + 4);
   const basis = planned * curves * (horizon + 4);
   return (
