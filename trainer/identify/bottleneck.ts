@@ -5,7 +5,7 @@
  * weighting beat the canonical-correlation one, where both were measured. Not a recursion: the bank remains the memory.
  */
 import { cholesky, solveLowerTransposed } from '../linalg/cholesky.ts';
-import { symmetricEigen } from '../linalg/eigen.ts';
+import { leadingEigen } from '../linalg/leading-eigen.ts';
 import { multiply, multiplyTransposed, transpose } from '../linalg/products.ts';
 import type { Layout } from './ridge.ts';
 
@@ -27,7 +27,7 @@ const LEAST_SHARE = 1e-5;
  * units   standardised
  * throws  TrainError 'fit' if the covariance is not positive definite
  * source  reduced-rank regression: Izenman, Journal of Multivariate Analysis 5 (1975), with the step weights as norm
- * cost    one symmetric eigendecomposition of min(p, ny·steps) and products of that size
+ * cost    the leading eigenvectors of a matrix of min(p, ny·steps), and products of that size
  */
 export function findDirections(covariance: Float64Array, map: Float64Array, layout: Layout, most: number): Bottleneck {
   const p = layout.channelCount * layout.featureCount;
@@ -40,13 +40,14 @@ export function findDirections(covariance: Float64Array, map: Float64Array, layo
     ? multiply(spread, transpose(spread, p, width), p, width, p)
     : multiplyTransposed(spread, spread, width, p, width);
   const size = isWide ? p : width;
-  const { values, vectors } = symmetricEigen(gram, size);
+  const found = Math.min(most, size);
+  const { values, vectors } = leadingEigen(gram, size, found);
   let n = 0;
-  while (n < Math.min(most, size) && values[n] > values[0] * LEAST_SHARE * LEAST_SHARE && values[n] > 0) n++;
+  while (n < found && values[n] > values[0] * LEAST_SHARE * LEAST_SHARE && values[n] > 0) n++;
   n = Math.max(n, 1);
   const carried = Float64Array.from({ length: n }, (_, k) => Math.sqrt(Math.max(0, values[k])));
   const columns = new Float64Array(size * n);
-  for (let i = 0; i < size; i++) for (let k = 0; k < n; k++) columns[i * n + k] = vectors[i * size + k];
+  for (let i = 0; i < size; i++) for (let k = 0; k < n; k++) columns[i * n + k] = vectors[i * found + k];
   if (isWide) {
     // Row k of W is q' L⁻¹: the column solves L' w = q.
     solveLowerTransposed(factor, p, columns, n);

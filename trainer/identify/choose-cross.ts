@@ -4,20 +4,33 @@
  */
 
 import { lastValueErrors, type OwnChoice, type OwnTrial } from './choose-own.ts';
-import { type FoldErrors, gainsSurely, geometric, leastIndex, sumOver } from './fold-errors.ts';
-import { type Cell, type CrossSystem, crossSystem, leftByOwn, mapError, ownMap, solveCross } from './ridge.ts';
+import { type FoldErrors, foldWeights, gainsSurely, geometric, leastIndex, sumOver } from './fold-errors.ts';
+import {
+  type Cell,
+  type CrossSystem,
+  crossSystem,
+  type Layout,
+  leftByOwn,
+  mapError,
+  ownMap,
+  solveCross,
+} from './ridge.ts';
 
-/** A decade apart; the best one's neighbours half a decade off are tried after. */
-const PENALTIES = [0.1, 1, 10] as const;
+/** The first two tried, then what lies between them or beyond the better one. */
+const PENALTIES = [1, 10] as const;
 const HALF_DECADE = Math.sqrt(10);
-/** Where the least of those is the best, decades below it are tried down to this: signals that are one thing seen twice. */
+/** Down to this, a decade at a time: signals that are one thing seen twice. */
 const LIGHTEST = 1e-4;
+const HEAVIEST = 100;
 /** A signal joins for this gain, other features for that one. */
 const JOIN_GAIN = 0.001;
 const MORE_GAIN = 0.002;
 const STILL_GAIN = 0.002;
-/** With more equations than this, features beside the plain ones are not tried: each try costs their cube. */
+/** With more equations than this, features beside the plain ones are not tried, and the later folds alone judge. */
 const MOST_TRIED = 512;
+const FEW_FOLDS = 3;
+/** With more products than this in one try, channels are too many for a cross stage. */
+const MOST_PRODUCTS = 4e8;
 
 /** A fold ready for trying penalties. */
 interface Ready {
@@ -44,14 +57,16 @@ interface Tried {
  * cost    folds × penalties solves of nc·kept equations
  */
 export function chooseCross(
-  trial: OwnTrial,
-  own: OwnChoice,
+  whole: OwnTrial,
+  wholeOwn: OwnChoice,
   variants: readonly (readonly number[])[],
-): { readonly cells: (Cell | null)[][]; readonly kept: readonly number[] } {
-  const { layout, groups } = trial;
+): (Cell | null)[][] {
+  const { layout, groups } = whole;
   const count = groups[groups.length - 1] + 1;
-  const none = own.cells.map((cells) => cells.map(() => null));
-  if (layout.channelCount === 1) return { cells: none, kept: [] };
+  const equations = layout.channelCount * variants[0].length;
+  const none = wholeOwn.cells.map((cells) => cells.map(() => null));
+  if (layout.channelCount === 1 || !isWithinReach(layout, equations)) return none;
+  const { trial, own } = equations > MOST_TRIED ? lastFolds(whole, wholeOwn) : { trial: whole, own: wholeOwn };
   const unit = Array.from({ length: count }, (_, g) => ({
     from: groups.indexOf(g) + 1,
     to: groups.lastIndexOf(g) + 1,
@@ -69,13 +84,46 @@ export function chooseCross(
     const more = tryThese(trial, ready(kept), kept, common);
     if (gainsSurely(scores(trial, more), scores(trial, best), MORE_GAIN, trial.weights)) best = more;
   }
-  return { cells: settle(trial, own, best), kept: best.kept };
+  return settle(trial, own, best);
+}
+
+/**
+ * Whether the channels are few enough for a cross stage.
+ *
+ * shapes  none
+ * units   equations: features of all channels
+ * throws  nothing
+ * source  none
+ * cost    trivial
+ */
+export function isWithinReach(layout: Layout, equations: number): boolean {
+  return equations * equations * layout.signalCount * layout.steps < MOST_PRODUCTS;
+}
+
+/** The folds that learn from most. */
+function lastFolds(trial: OwnTrial, own: OwnChoice): { readonly trial: OwnTrial; readonly own: OwnChoice } {
+  const folds = trial.folds.slice(-FEW_FOLDS);
+  return {
+    trial: { ...trial, folds, weights: foldWeights(folds) },
+    own: { ...own, errors: own.errors.slice(-FEW_FOLDS) },
+  };
 }
 
 function tryAll(trial: OwnTrial, ready: readonly Ready[], kept: readonly number[]): Tried {
   let tried = tryThese(trial, ready, kept, PENALTIES);
-  for (let least = PENALTIES[0] / 10; least >= LIGHTEST && Math.min(...commonOf(trial, tried)) === 0; least /= 10) {
-    tried = joined(tryThese(trial, ready, kept, [least]), tried);
+  for (;;) {
+    const totals = tried.errors.map((one) =>
+      geometric(
+        sumOver(one, trial.layout.steps, () => true),
+        trial.weights,
+      ),
+    );
+    const least = tried.penalties[leastIndex(totals)];
+    const isEnd = least === Math.min(...tried.penalties) && least > LIGHTEST * 1.01;
+    const isHeavy = least === Math.max(...tried.penalties) && least < HEAVIEST / 1.01;
+    if (isEnd && least <= 1) tried = joined(tried, tryThese(trial, ready, kept, [least / 10]));
+    else if (isHeavy && least < 10 * 1.01) tried = joined(tried, tryThese(trial, ready, kept, [least * HALF_DECADE]));
+    else break;
   }
   const totals = tried.errors.map((one) =>
     geometric(
@@ -83,8 +131,11 @@ function tryAll(trial: OwnTrial, ready: readonly Ready[], kept: readonly number[
       trial.weights,
     ),
   );
-  const coarse = tried.penalties[leastIndex(totals)];
-  return joined(tried, tryThese(trial, ready, kept, [coarse / HALF_DECADE, coarse * HALF_DECADE]));
+  const [best, second] = tried.penalties
+    .map((penalty, k) => ({ penalty, total: totals[k] }))
+    .sort((one, other) => one.total - other.total);
+  const between = Math.sqrt(best.penalty * second.penalty);
+  return joined(tried, tryThese(trial, ready, kept, [between]));
 }
 
 function joined(a: Tried, b: Tried): Tried {

@@ -72,8 +72,7 @@ export function choose(groups: readonly Moments[], bank: Bank, layout: Layout): 
     settleOwn(trial, (g) => (g < reach ? lagsLevel : plainLevel)),
   );
   const crossFeatures = [plain.kept, ...(reach > 0 ? [withLags.kept] : []), plainLevel.kept];
-  const cross = chooseCross(trial, own, crossFeatures);
-  return describe(bank, layout, trial, own, cross.cells);
+  return describe(bank, layout, trial, own, chooseCross(trial, own, crossFeatures));
 }
 
 /** A bank's size without lags, and the errors of its features without and with the level. */

@@ -2,6 +2,7 @@
  * From a completed history to what the small model is made of: bank and penalties chosen by rolling origin, the map learned
  * from the learning part, its directions found. One pass over the readings; all else is small algebra.
  */
+import type { Round } from '@stillwell/runtime/filter';
 import type { Learned } from '../quantise/quantise.ts';
 import { type Bank, designBank, featureCount, settlingTicks } from './bank.ts';
 import { type Partition, partition, usableBlocks } from './blocks.ts';
@@ -13,6 +14,7 @@ import { aboutMeans, addMoments, pickMoments } from './moment-sets.ts';
 import { type Block, gatherMoments, type Moments } from './moments.ts';
 import { splitOwn } from './own-part.ts';
 import { type Layout, twoStageMap } from './ridge.ts';
+import { withoutRound } from './round.ts';
 
 /** Where and what to learn. Lengths in ticks from the start of the completed history. */
 export interface LearnInput {
@@ -20,8 +22,12 @@ export interface LearnInput {
   readonly signalCount: number;
   readonly horizon: number;
   readonly periodTicks: number;
+  /** Further periods in ticks, the strongest first. */
+  readonly otherPeriods: readonly number[];
   readonly learnTicks: number;
   readonly calibrateTicks: number;
+  /** Taken away from the history first; null: nothing. */
+  readonly round: Round | null;
 }
 
 /** What learning gave. */
@@ -48,10 +54,11 @@ const SILENT = 1e-6;
  * source  file head
  * cost    one pass over the readings, then O(p³)
  */
-export function learn(input: LearnInput): LearnOutput {
+export function learn(given: LearnInput): LearnOutput {
+  const input = lessRound(given);
   const { filled, horizon, learnTicks, calibrateTicks } = input;
-  const widest = designBank(input.periodTicks, horizon, learnTicks);
-  const settle = Math.min(settlingTicks(widest), Math.floor(learnTicks / 8));
+  const widest = designBank({ ...input, channelCount: filled.values.length });
+  const settle = (input.round?.ticks ?? 0) + Math.min(settlingTicks(widest), Math.floor(learnTicks / 8));
   const cut = partition(learnTicks, calibrateTicks, settle, horizon, filled.inLongGap);
   const layout = layoutOf(input, widest);
   const { early, late, between } = gatherPartition(input, widest, cut);
@@ -77,11 +84,18 @@ export function learn(input: LearnInput): LearnOutput {
  * source  none
  * cost    one pass over the readings and one fit
  */
-export function learnAgain(input: LearnInput, choice: Choice, ticks: number): Learned {
+export function learnAgain(given: LearnInput, choice: Choice, ticks: number): Learned {
+  const input = lessRound(given);
   const layout = layoutOf(input, choice.bank);
-  const settle = Math.min(settlingTicks(choice.bank), Math.floor(ticks / 8));
+  const settle = (input.round?.ticks ?? 0) + Math.min(settlingTicks(choice.bank), Math.floor(ticks / 8));
   const blocks = usableBlocks(settle, ticks, input.horizon, input.filled.inLongGap);
   return mapAndDirections(addMoments(gather(input, choice.bank, blocks)), layout, choice);
+}
+
+/** What learning sees: the history less its rounds. */
+function lessRound(input: LearnInput): LearnInput {
+  const { round, filled, signalCount } = input;
+  return round === null ? input : { ...input, filled: withoutRound(filled, round, signalCount) };
 }
 
 function layoutOf(input: LearnInput, bank: Bank): Layout {

@@ -16,10 +16,13 @@ const SHARES = [0.15, 0.3, 0.5, 0.75, 1] as const;
 const FINALISTS = 5;
 /** Bases tried; a basis of more curves than steps has no use. */
 const BASES = [1, 2, 3, 4, 5, 6, 7, 8, 9, 10, 11, 12, 13, 14, 15, 16, 18, 20, 22, 24] as const;
-/** A smaller size is preferred where its error is within this share of the best … */
+/**
+ * Of the sizes that fill the bytes the one nearest to the full map is taken: the map was chosen on more folds than size can
+ * be. A smaller one is preferred where its error on the calibration part is no worse by this share …
+ */
 const TIE = 0.001;
-/** … and it either gives up less than this share of the full map's forecast, or beats the largest by that gain. */
-const LOST_SHARE = 0.002;
+/** … and it gives up no more than this share of the full map's forecast, or where it beats the nearest by that gain. */
+const LOST_SHARE = 0.001;
 const CLEAR_GAIN = 0.005;
 
 /**
@@ -65,15 +68,15 @@ export function chooseSize(learned: Learned, judge: Moments, tensorBytes: number
     return { ...one, error, bytes: sizeBytes(one.size, learned) };
   });
   const full = judged.filter(({ isFull }) => isFull);
-  const largest = leastError(full.length > 0 ? full : judged);
-  const least = leastError(judged).error;
+  const nearest = least(full.length > 0 ? full : judged, ({ lost }) => lost);
+  const leastError = least(judged, ({ error }) => error).error;
   const total = sumFrom(energiesOf(learned, false).directions, 0);
   const smaller = judged.filter(({ error, lost, bytes }) => {
-    const isSmallLoss = lost < largest.lost + LOST_SHARE * total;
-    const isBetter = error < largest.error * (1 - CLEAR_GAIN);
-    return bytes < largest.bytes && error <= least * (1 + TIE) && (isSmallLoss || isBetter);
+    const isAlike = lost < nearest.lost + LOST_SHARE * total && error <= nearest.error * (1 + TIE);
+    const isBetter = error < nearest.error * (1 - CLEAR_GAIN) && error <= leastError * (1 + TIE);
+    return bytes < nearest.bytes && (isAlike || isBetter);
   });
-  return smaller.reduce((best, one) => (one.bytes < best.bytes ? one : best), largest).size;
+  return smaller.reduce((best, one) => (one.bytes < best.bytes ? one : best), nearest).size;
 }
 
 /** A size on the frontier. */
@@ -90,8 +93,8 @@ interface Judged extends Sized {
   readonly bytes: number;
 }
 
-function leastError(sizes: readonly Judged[]): Judged {
-  return sizes.reduce((best, one) => (one.error < best.error ? one : best));
+function least(sizes: readonly Judged[], measure: (size: Judged) => number): Judged {
+  return sizes.reduce((best, one) => (measure(one) < measure(best) ? one : best));
 }
 
 /** Energy of the weighted forecast that each direction and each curve carries, without or with an own part. */

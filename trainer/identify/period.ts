@@ -1,6 +1,7 @@
 /**
- * The period the bank's resonators sit on: the day where a day is between 4 and 2000 ticks and the history holds enough
- * of them, otherwise the strongest peak of the signals' averaged spectrum that stands clear of its surroundings.
+ * The periods the bank's resonators sit on: the day where a day is between 4 and 2000 ticks and the history holds enough
+ * of them, otherwise the strongest peak of the signals' averaged spectrum that stands clear of its surroundings; and what
+ * else comes round beside it.
  */
 import { fourier } from '../linalg/fourier.ts';
 
@@ -9,12 +10,32 @@ const SHORTEST_PERIOD_TICKS = 4;
 const LONGEST_PERIOD_TICKS = 2000;
 /** A period must have come round this often in the learning part. */
 const LEAST_PERIODS = 3;
+/** The week, whose few rounds would be followed too closely, this often. */
+const LEAST_WEEKS = 8;
 /** Power of a peak over the median of its surroundings; averaged Hann segments of plain red noise stay below it. */
 const CLEAR_RATIO = 12;
+/** The same for a single signal's spectrum, of which there are many. */
+const OWN_RATIO = 20;
 const LONGEST_SEGMENT = 4096;
+/** Periods besides the first. */
+const MOST_OTHERS = 2;
+/** A peak this near to a harmonic of a period already taken, in bins of the spectrum or as a share, says nothing new. */
+const HARMONIC_BINS = 2.5;
+const HARMONIC_SHARE = 0.02;
+const MAIN_HARMONICS = 12;
+const OTHER_HARMONICS = 3;
+
+/** Periods of a history, in ticks. */
+export interface Periods {
+  /** 0: none. */
+  readonly main: number;
+  /** No harmonics of it or of each other; the strongest first, the week before all others. */
+  readonly others: readonly number[];
+}
 
 /**
- * Ticks in the period, or 0 where there is none.
+ * Finds the periods: the day or the strongest peak, then the week where the day is the main one and the history holds
+ * enough of them, then what else stands clear in the spectrum of all signals or of one.
  *
  * shapes  values (n) of (learnTicks), complete
  * units   standardised; result in ticks
@@ -22,16 +43,70 @@ const LONGEST_SEGMENT = 4096;
  * source  averaged periodogram: Welch, IEEE Trans. Audio and Electroacoustics 15 (1967)
  * cost    O(n T log T)
  */
-export function findPeriod(values: readonly Float64Array[], tickMs: number): number {
+export function findPeriods(values: readonly Float64Array[], tickMs: number): Periods {
   const ticks = values[0].length;
   const day = Math.round(DAY_MS / tickMs);
-  if (day >= SHORTEST_PERIOD_TICKS && day <= LONGEST_PERIOD_TICKS && ticks >= LEAST_PERIODS * day) return day;
+  const isDaily = day >= SHORTEST_PERIOD_TICKS && day <= LONGEST_PERIOD_TICKS && ticks >= LEAST_PERIODS * day;
+  const week = 7 * day;
+  const others = isDaily && week <= LONGEST_PERIOD_TICKS && ticks >= LEAST_WEEKS * week ? [week] : [];
+  const peaks = spectralPeaks(values, CLEAR_RATIO);
+  const main = isDaily ? day : (peaks.find(({ isRepeated }) => isRepeated)?.period ?? 0);
+  if (main === 0) return { main, others: [] };
+  const own = values.length > 1 ? values.flatMap((y) => spectralPeaks([y], OWN_RATIO)) : [];
+  for (const { period, size, isRepeated } of [...peaks, ...own]) {
+    if (others.length >= MOST_OTHERS) break;
+    const isNew =
+      !isHarmonic(period, main, size, MAIN_HARMONICS) &&
+      others.every((known) => !isHarmonic(period, known, size, OTHER_HARMONICS));
+    if (isNew && isRepeated) others.push(Math.round(period));
+  }
+  return { main: Math.round(main), others };
+}
+
+interface Peak {
+  /** Ticks, not rounded. */
+  readonly period: number;
+  /** Ticks of the segments whose spectrum was averaged. */
+  readonly size: number;
+  readonly isRepeated: boolean;
+}
+
+/** Whether a period's frequency is that of a harmonic of another, as nearly as the spectrum can tell. */
+function isHarmonic(period: number, known: number, size: number, most: number): boolean {
+  const bin = size / period;
+  for (let m = 1; m <= most; m++) {
+    const harmonic = (m * size) / known;
+    if (Math.abs(bin - harmonic) < Math.max(HARMONIC_BINS, HARMONIC_SHARE * harmonic)) return true;
+  }
+  return false;
+}
+
+/** Peaks that stand clear of their surroundings, the strongest first. */
+function spectralPeaks(values: readonly Float64Array[], clear: number): Peak[] {
+  const ticks = values[0].length;
   let size = 64;
   while (size * 2 <= Math.min(ticks / 2, LONGEST_SEGMENT)) size *= 2;
-  if (ticks < size) return 0;
+  if (ticks < size) return [];
   const power = new Float64Array(size / 2);
   for (const y of values) addPeriodogram(power, y, size);
-  return peakPeriod(power, size);
+  const first = Math.max(LEAST_PERIODS, Math.ceil(size / LONGEST_PERIOD_TICKS));
+  const bins: number[] = [];
+  for (let k = first; k <= size / SHORTEST_PERIOD_TICKS && k < power.length - 1; k++) {
+    if (power[k] < power[k - 1] || power[k] < power[k + 1]) continue;
+    if (power[k] >= clear * background(power, k)) bins.push(k);
+  }
+  bins.sort((a, b) => power[b] - power[a]);
+  return bins.map((k) => {
+    const period = size / (k + peakShift(power, k));
+    return { period, size, isRepeated: ticks >= LEAST_PERIODS * period };
+  });
+}
+
+/** Where a parabola through the logarithms of a bin and its neighbours has its top, in bins from it. */
+function peakShift(power: Float64Array, k: number): number {
+  const [left, top, right] = [power[k - 1], power[k], power[k + 1]].map((value) => Math.log(Math.max(value, 1e-300)));
+  const bend = left - 2 * top + right;
+  return bend === 0 ? 0 : (0.5 * (left - right)) / bend;
 }
 
 /** Adds the signal's averaged spectrum, its total made 1 so that no signal speaks louder than another. */
@@ -48,24 +123,6 @@ function addPeriodogram(power: Float64Array, y: Float64Array, size: number): voi
   }
   const total = own.reduce((sum, value) => sum + value, 0);
   if (total > 0) for (let k = 0; k < own.length; k++) power[k] += own[k] / total;
-}
-
-function peakPeriod(power: Float64Array, size: number): number {
-  let best = 0;
-  let strongest = 0;
-  const first = Math.max(LEAST_PERIODS, Math.ceil(size / LONGEST_PERIOD_TICKS));
-  for (let k = first; k <= size / SHORTEST_PERIOD_TICKS && k < power.length - 1; k++) {
-    if (power[k] < power[k - 1] || power[k] < power[k + 1] || power[k] <= strongest) continue;
-    if (power[k] < CLEAR_RATIO * background(power, k)) continue;
-    best = k;
-    strongest = power[k];
-  }
-  if (best === 0) return 0;
-  const left = power[best - 1];
-  const right = power[best + 1];
-  const bend = left - 2 * power[best] + right;
-  const shift = bend === 0 ? 0 : (0.5 * (left - right)) / bend;
-  return Math.round(size / (best + shift));
 }
 
 /** Median power around bin k, its own lobe left out. */

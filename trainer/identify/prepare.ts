@@ -2,6 +2,7 @@
  * A history made ready for learning: scaled, completed, its period and seasonal means found; and what was odd about it.
  */
 import type { Signal, Site } from '@stillwell/protocol';
+import type { Round } from '@stillwell/runtime/filter';
 import { excludedNotes, withoutExcluded } from '../exclusions.ts';
 import { channelsOf } from '../history/channels.ts';
 import type { Series } from '../history/series.ts';
@@ -10,16 +11,18 @@ import type { Split } from '../requirements.ts';
 import { type Excursion, findExcursions, withoutExcursions } from './excursions.ts';
 import { type Filled, fillHistory, type PartEnds } from './fill.ts';
 import type { LearnInput } from './learn.ts';
-import { findPeriod } from './period.ts';
+import { findPeriods } from './period.ts';
 import { findScalings, type Scaling } from './scaling.ts';
 import { seasonOf } from './season.ts';
 
 /** Ready for learning. */
 export interface Prepared {
-  readonly around: Omit<Surroundings, 'bank' | 'coverage' | 'boundsRate'>;
+  readonly around: Omit<Surroundings, 'bank' | 'round' | 'coverage' | 'boundsRate'>;
   /** The history without its wild readings and excluded time: what is learned and calibrated from. */
   readonly calm: Series;
   readonly filled: Filled;
+  /** Periods beside the seasonal one, ticks. */
+  readonly otherPeriods: readonly number[];
   readonly learnTicks: number;
   readonly calibrateTicks: number;
   readonly warnings: readonly string[];
@@ -55,7 +58,7 @@ export function prepareHistory(
   const scalings = found.map((scaling, c) => withinRange(scaling, channelsOf(site)[c]));
   const first = fillHistory(calm, scalings, 0, longGap, ends);
   const learning = first.values.slice(0, series.signalCount).map((z) => z.subarray(0, learnTicks));
-  const period = findPeriod(learning, series.tickMs);
+  const { main: period, others } = findPeriods(learning, series.tickMs);
   const filled = period > 0 ? fillHistory(calm, scalings, period, longGap, ends) : first;
   return {
     around: {
@@ -69,6 +72,7 @@ export function prepareHistory(
     },
     calm,
     filled,
+    otherPeriods: others,
     learnTicks,
     calibrateTicks,
     warnings: [
@@ -94,15 +98,17 @@ function withinRange(scaling: Scaling, { range, aggregate }: Signal): Scaling {
 }
 
 /** The part of it that learning takes. */
-export function learnInput(prepared: Prepared): LearnInput {
-  const { around, filled, learnTicks, calibrateTicks } = prepared;
+export function learnInput(prepared: Prepared, round: Round | null): LearnInput {
+  const { around, filled, otherPeriods, learnTicks, calibrateTicks } = prepared;
   return {
     filled,
     signalCount: around.signalCount,
     horizon: around.horizon,
     periodTicks: around.season.periodTicks,
+    otherPeriods,
     learnTicks,
     calibrateTicks,
+    round,
   };
 }
 

@@ -26,7 +26,11 @@ export function bankSizes(bank: Bank): BankSize[] {
   const sizes: BankSize[] = [
     { means: Math.min(4, means), resonators: 0, ...plain },
     { means, resonators: 0, ...plain },
-    { means, resonators: Math.ceil(resonators / 3), ...plain },
+    ...(bank.rungs ?? [Math.ceil(resonators / 3)]).map((count) => ({
+      means,
+      resonators: Math.min(count, resonators),
+      ...plain,
+    })),
     { means, resonators, ...plain },
   ];
   return sizes.filter(

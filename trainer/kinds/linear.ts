@@ -2,6 +2,7 @@
  * The linear kind as a candidate: the largest bank and state that fit the bytes, unless smaller ones do as well.
  */
 
+import { MAX_BUNDLE_BYTES } from '@stillwell/protocol';
 import type { Round } from '@stillwell/runtime/filter';
 import { TrainError } from '../errors.ts';
 import { bankName } from '../identify/bank.ts';
@@ -35,10 +36,15 @@ export function tryLinear(attempt: Attempt): Candidate {
     tensorBytes += left;
   }
   const { maxBytes } = attempt.options;
+  const fewer = 'shorten the horizon, or take fewer signals into the site file';
+  const isHopeless = maxBytes - free > MAX_BUNDLE_BYTES;
   throw new TrainError(
     'fit',
     `--max-bytes: expected room for at least one state, got ${maxBytes} bytes for ${attempt.site.signals.length} signals and a ` +
-      `horizon of ${attempt.site.horizon} ticks, ${free < 0 ? -free : 1} too few. Raise the limit, or shorten the horizon.`,
+      `horizon of ${attempt.site.horizon} ticks, ${free < 0 ? -free : 1} too few. ` +
+      (isHopeless
+        ? `Even the largest limit of ${MAX_BUNDLE_BYTES} would not do: ${fewer}.`
+        : `Raise the limit, ${fewer}.`),
   );
 }
 

@@ -4,6 +4,7 @@ import { designBank, featureCount, settlingTicks } from '../../../trainer/identi
 import { fillHistory } from '../../../trainer/identify/fill.ts';
 import { type LearnOutput, learn } from '../../../trainer/identify/learn.ts';
 import { findScalings } from '../../../trainer/identify/scaling.ts';
+import { bankSizes } from '../../../trainer/identify/sub-banks.ts';
 import { gaussians } from '../../support/gaussian.ts';
 import { seriesOf } from '../../support/history.ts';
 import { recurrence } from '../../support/sample-bundle.ts';
@@ -27,8 +28,10 @@ function learned(channels: readonly Float64Array[]): LearnOutput {
     signalCount: channels.length,
     horizon: H,
     periodTicks: 0,
+    otherPeriods: [],
     learnTicks: ends.learnTicks,
     calibrateTicks: ends.calibrateEnd - ends.learnTicks,
+    round: null,
   });
 }
 
@@ -70,13 +73,35 @@ describe('choose', () => {
 });
 
 describe('designBank', () => {
+  const wish = { periodTicks: 24, otherPeriods: [], horizon: H, learnTicks: 4000, channelCount: 3 };
+
   it('holds means, resonators, recent lags and those around a short period', () => {
-    const bank = designBank(24, H, 4000);
+    const bank = designBank(wish);
     expect(bank.decays.length).toBe(8);
     expect(bank.resonators.length).toBe(18);
     expect(bank.lags).toEqual([1, 2, 3, 5, 8, 13, 21, 23, 24, 25, 34, 55]);
-    expect(designBank(1440, H, 20_000).lags).toEqual([1, 2, 3, 5, 8, 13, 21, 34, 55]);
-    expect(designBank(0, H, 90).lags).toEqual([1, 2, 3, 5, 8]);
+    expect(designBank({ ...wish, periodTicks: 1440, learnTicks: 20_000 }).lags).toEqual([
+      1, 2, 3, 5, 8, 13, 21, 34, 55,
+    ]);
+    expect(designBank({ ...wish, periodTicks: 0, learnTicks: 90 }).lags).toEqual([1, 2, 3, 5, 8]);
     expect(settlingTicks({ decays: [], resonators: [], lags: bank.lags })).toBe(55);
+  });
+
+  it('adds resonators of further periods after those of the period, on a rung of their own', () => {
+    const plain = designBank(wish);
+    const more = designBank({ ...wish, otherPeriods: [17] });
+    expect(more.resonators.slice(0, 18)).toEqual(plain.resonators);
+    expect(more.resonators.length).toBe(24);
+    expect(more.rungs).toEqual([6, 18, 24]);
+    const [re, im] = more.resonators[18]!;
+    expect((2 * Math.PI) / Math.atan2(im, re)).toBeCloseTo(17, 9);
+    expect(bankSizes(more).map(({ resonators }) => resonators)).toEqual([0, 0, 6, 18, 24]);
+  });
+
+  it.each([16, 40, 200])('gives each of %i channels few enough features', (channelCount) => {
+    const bank = designBank({ ...wish, channelCount });
+    expect(featureCount(bank)).toBeLessThanOrEqual(Math.max(6, 768 / channelCount));
+    expect(bank.decays.length).toBeGreaterThanOrEqual(2);
+    expect(bank.decays[0]).toBeCloseTo(Math.exp(-1 / 1.5), 12);
   });
 });

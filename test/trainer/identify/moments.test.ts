@@ -15,7 +15,11 @@ const values = Array.from({ length: 3 }, (_, c) => {
     return level + Math.sin((2 * Math.PI * t) / 12 + c);
   });
 });
-const recursive: Bank = designBank(12, horizon, 400);
+const recursive: Bank = {
+  ...designBank({ periodTicks: 12, otherPeriods: [], horizon, learnTicks: 400, channelCount: 3 }),
+  lags: [],
+  hasLevel: false,
+};
 
 /** Features by convolution: e(t) - y(t) and s(t) - g y(t), started at the steady state of the first reading. */
 function direct(bank: Bank, block: Block): Moments {

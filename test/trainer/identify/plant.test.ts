@@ -85,8 +85,10 @@ function excess(ticks: number, seed: number): number {
     signalCount: 2,
     horizon: H,
     periodTicks: 0,
+    otherPeriods: [],
     learnTicks,
     calibrateTicks: ticks - learnTicks,
+    round: null,
   });
   const [moments] = gatherMoments({ values, signalCount: 2, bank: choice.bank, horizon: H }, [
     { fromIndex: ticks, toIndex: ticks + TEST_TICKS - H },
