@@ -11,7 +11,7 @@ import {
   sealBundle,
   type TrustedKeys,
 } from '@stillwell/protocol';
-import { type LinearModel, modelFromBundle, runProbe } from '@stillwell/runtime/filter';
+import { type Model, modelFromBundle, runProbe } from '@stillwell/runtime/filter';
 import { type ModelChoice, syntheticBundle, syntheticReadings } from './models.ts';
 
 export const SITE_NAME = 'marsh-lane';
@@ -76,9 +76,7 @@ export function sealedOf(sequence: number, choice: ModelChoice = {}, epoch = 1):
   return sealBundle(documentOf(choice), { epoch, sequence }, [author]);
 }
 
-const model: LinearModel = modelFromBundle(
-  syntheticBundle({ signals: ['level', 'flow'], inputs: ['pump'], tickMs: 60_000 }),
-);
+const model: Model = modelFromBundle(syntheticBundle({ signals: ['level', 'flow'], inputs: ['pump'], tickMs: 60_000 }));
 
 /** One MQTT message of the plant. */
 export interface PlantMessage {

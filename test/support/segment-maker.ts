@@ -9,7 +9,7 @@ import { bundleSchemaHash, encodeBundle, latticeIndex, latticeValue, SegmentWrit
 import {
   createState,
   type FilterState,
-  type LinearModel,
+  type Model,
   modelFromBundle,
   predictNext,
   restoreState,
@@ -20,7 +20,7 @@ import {
 import { type ModelChoice, syntheticBundle } from './models.ts';
 
 /** A synthetic bundle with a probe that holds, as bytes and as model. */
-export function sealableBundle(choice: ModelChoice = {}): { document: Uint8Array; bundle: Bundle; model: LinearModel } {
+export function sealableBundle(choice: ModelChoice = {}): { document: Uint8Array; bundle: Bundle; model: Model } {
   const bare = syntheticBundle(choice);
   const model = modelFromBundle(bare);
   const run = runProbe(model, 5, 40);
@@ -46,7 +46,7 @@ export class SegmentMaker {
   readonly corrected = new Map<string, number>();
   readonly ticks = new Set<number>();
   readonly #names: { site: string; gateway: string; stream: Uint8Array };
-  #model: LinearModel;
+  #model: Model;
   #digest: Uint8Array;
   #state: FilterState;
   #number = 0;
@@ -55,7 +55,7 @@ export class SegmentMaker {
   #isKeyed = true;
   #firstTick = 0;
 
-  constructor(site: string, gateway: string, document: Uint8Array, model: LinearModel, stream = 1) {
+  constructor(site: string, gateway: string, document: Uint8Array, model: Model, stream = 1) {
     this.#names = { site, gateway, stream: new Uint8Array(8).fill(stream) };
     this.#model = model;
     this.#digest = digestOf(document);
@@ -110,7 +110,7 @@ export class SegmentMaker {
   }
 
   /** Changes the bundle at a tick boundary, the new filter warmed on the rows given. */
-  change(document: Uint8Array, model: LinearModel, fromTick: number, warm: readonly Float64Array[]): void {
+  change(document: Uint8Array, model: Model, fromTick: number, warm: readonly Float64Array[]): void {
     this.close();
     this.#model = model;
     this.#digest = digestOf(document);

@@ -6,6 +6,7 @@ import { TrainError } from '../../trainer/errors.ts';
 import type { Series } from '../../trainer/history/series.ts';
 import { FIT_DEFAULTS, type FitOptions, type FitResult, fit as fitHistory } from '../../trainer/pipeline.ts';
 import { replayError } from '../../trainer/quantise/audit.ts';
+import { expectFiniteBundle } from '../support/finite.ts';
 import { gaussians } from '../support/gaussian.ts';
 import { hourlySite, seriesOf, wanderingDays } from '../support/history.ts';
 import { recurrence } from '../support/sample-bundle.ts';
@@ -202,7 +203,7 @@ describe('fit', () => {
     const copies = seriesOf(names, [days[0]!, days[0]!, days[0]!.map((value) => value * 1e9)], 2);
     const result = await run(copies);
     expect(result.verdicts.hasSkill).toBe(true);
-    expect(result.model.bottleneck.every((value) => Number.isFinite(value))).toBe(true);
+    expectFiniteBundle(result.bundle);
   });
 
   it('learns once more from all of it when asked, and keeps what was judged', async () => {

@@ -15,7 +15,7 @@ const codeAndField = (act: () => unknown): [string, unknown] => {
 
 describe('modelFromBundle', () => {
   const bundle = syntheticBundle({ inputs: ['valve'], seed: 4 });
-  const model = modelFromBundle(bundle);
+  const model = modelFromBundle(bundle) as LinearModel;
 
   test('counts, scaling and weights are the bundle’s', () => {
     expect([model.channelCount, model.signalCount, model.featureCount, model.order, model.basisCount]).toEqual([
