@@ -83,7 +83,7 @@ export interface InputOutlook {
   readonly planUntilMs: number | null;
   /** Mean size of plan less what came, over the last horizon, in `unit`; null where nothing was planned and came. */
   readonly planError: number | null;
-  /** The same of what is expected without a plan, when the bundle was learned; null where that is not known. */
+  /** The same of what stands for it without a plan, when the bundle was learned or of late; null where that is not known. */
   readonly usualError: number | null;
 }
 

@@ -9,7 +9,10 @@ const WINDOWS = 8;
 interface Window {
   tick: number;
   readonly planned: Float64Array;
+  /** Value when it was kept. */
+  held: number;
   sum: number;
+  heldSum: number;
   count: number;
 }
 
@@ -18,6 +21,7 @@ export class PlanRecord {
   readonly #horizon: number;
   readonly #stride: number;
   readonly #windows: Window[];
+  #last = Number.NaN;
 
   constructor(horizon: number) {
     this.#horizon = horizon;
@@ -25,7 +29,9 @@ export class PlanRecord {
     this.#windows = Array.from({ length: WINDOWS }, () => ({
       tick: Number.NEGATIVE_INFINITY,
       planned: new Float64Array(horizon),
+      held: Number.NaN,
       sum: 0,
+      heldSum: 0,
       count: 0,
     }));
   }
@@ -33,12 +39,14 @@ export class PlanRecord {
   /** What came at a tick, in the input's unit, NaN where nothing did. */
   came(tick: number, value: number): void {
     if (Number.isNaN(value)) return;
+    this.#last = value;
     for (const window of this.#windows) {
       const ahead = tick - window.tick;
       if (!(ahead >= 1 && ahead <= this.#horizon)) continue;
       const planned = window.planned[ahead - 1]!;
       if (Number.isNaN(planned)) continue;
       window.sum += Math.abs(planned - value);
+      window.heldSum += Math.abs(window.held - value);
       window.count++;
     }
   }
@@ -50,7 +58,9 @@ export class PlanRecord {
     const oldest = this.#windows.reduce((best, one) => (one.tick < best.tick ? one : best));
     oldest.tick = tick;
     oldest.planned.set(values.subarray(at, at + this.#horizon));
+    oldest.held = this.#last;
     oldest.sum = 0;
+    oldest.heldSum = 0;
     oldest.count = 0;
   }
 
@@ -61,7 +71,18 @@ export class PlanRecord {
 
   /** Mean size of plan less what came, over the last horizon, in the input's unit; null where nothing was planned and came. */
   get error(): number | null {
+    return this.#mean((window) => window.sum);
+  }
+
+  /** The same of the value when the plan was kept, had that been held instead of the plan. */
+  get heldError(): number | null {
+    const mean = this.#mean((window) => window.heldSum);
+    return Number.isNaN(mean) ? null : mean;
+  }
+
+  #mean(sumOf: (window: Window) => number): number | null {
     const { count } = this;
-    return count === 0 ? null : this.#windows.reduce((sum, window) => sum + window.sum, 0) / count;
+    if (count === 0) return null;
+    return this.#windows.reduce((sum, window) => sum + (window.count > 0 ? sumOf(window) : 0), 0) / count;
   }
 }

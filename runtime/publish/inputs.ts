@@ -9,8 +9,8 @@ export function inputOutlooks(serving: Serving, plans: PlanKeeper, site: Site, n
   const { model } = serving;
   return site.inputs.map(({ name, unit }, u) => {
     const ruling = plans.inForce(u);
-    const { error } = plans.record(u);
-    const usual = usualError(model, u);
+    const { error, heldError } = plans.record(u);
+    const usual = usualError(model, u) ?? (model.kind === 'driven' ? heldError : null);
     return {
       input: name,
       unit,

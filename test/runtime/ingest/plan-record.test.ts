@@ -76,6 +76,19 @@ describe('the record of plans', () => {
     ).toBe(0);
   });
 
+  test('beside it, how far off holding the last value would have been', () => {
+    // Climbs by one a tick: held h ticks, a value is h off; 8 windows of 16 ticks hold steps 1 to 16 about alike.
+    const record = run(
+      200,
+      (_, tick) => tick,
+      (tick) => tick,
+    );
+    expect(record.error).toBe(0);
+    expect(record.heldError).toBeGreaterThan(4);
+    expect(record.heldError).toBeLessThan(12);
+    expect(new PlanRecord(4).heldError).toBeNull();
+  });
+
   test('a horizon of one tick', () => {
     const record = new PlanRecord(1);
     record.planned(4, Float64Array.of(2), 0);
