@@ -7,10 +7,10 @@ import { type Bank, featureCount } from './bank.ts';
 import { chooseCross } from './choose-cross.ts';
 import { type OwnChoice, type OwnErrors, type OwnTrial, settleOwn, tryOwn } from './choose-own.ts';
 import { type Fold, foldWeights, gainsSurely, geometric, sumOver } from './fold-errors.ts';
-import { aboutMeans, addMoments, pickMoments } from './moment-sets.ts';
+import { aboutMeans, addMoments } from './moment-sets.ts';
 import type { Moments } from './moments.ts';
 import type { Cell, Layout, TwoStagePlan } from './ridge.ts';
-import { stepGroups, trialSteps } from './step-groups.ts';
+import { stepGroups, type trialSteps } from './step-groups.ts';
 import { type BankSize, bankSizes, subBank } from './sub-banks.ts';
 
 /** What was chosen. */
@@ -44,17 +44,19 @@ const FIRST_FOLD = 3;
 /**
  * Chooses.
  *
- * shapes  groups in time order, of the widest bank's moments
+ * shapes  groups in time order, of the widest bank's moments at the trial steps; layout of all steps
  * units   standardised
  * throws  TrainError 'fit' from the solves
  * source  rolling origin: Tashman (2000)
  * cost    folds × (banks × penalties × ny own solves + penalties cross solves)
  */
-export function choose(groups: readonly Moments[], bank: Bank, layout: Layout): Choice {
-  const trials = trialSteps(layout.steps);
-  const all = Array.from({ length: layout.featureCount }, (_, f) => f);
-  const picked = groups.map((moments) => pickMoments(moments, layout, all, trials.steps));
-  const folds = makeFolds(picked);
+export function choose(
+  groups: readonly Moments[],
+  bank: Bank,
+  layout: Layout,
+  trials: ReturnType<typeof trialSteps>,
+): Choice {
+  const folds = makeFolds(groups);
   const trial: OwnTrial = {
     folds,
     weights: foldWeights(folds),

@@ -3,18 +3,22 @@
  * from the learning part, its directions found. One pass over the readings; all else is small algebra.
  */
 import type { Round } from '@stillwell/runtime/filter';
+import { TrainError } from '../errors.ts';
 import type { Learned } from '../quantise/quantise.ts';
 import { type Bank, designBank, featureCount, settlingTicks } from './bank.ts';
-import { type Partition, partition, usableBlocks } from './blocks.ts';
+import { partition, usableBlocks } from './blocks.ts';
 import { findDirections, stateMoments } from './bottleneck.ts';
 import { type Choice, choose } from './choose.ts';
+import { isWithinReach } from './choose-cross.ts';
 import type { Filled } from './fill.ts';
+import { gatherCut, gatherSum } from './gather.ts';
 import { findCurves, fullReadout } from './horizon-basis.ts';
-import { aboutMeans, addMoments, pickMoments } from './moment-sets.ts';
-import { type Block, gatherMoments, type Moments } from './moments.ts';
+import { aboutMeans, pickMoments } from './moment-sets.ts';
+import type { MomentInput, Moments } from './moments.ts';
 import { splitOwn } from './own-part.ts';
 import { type Layout, twoStageMap } from './ridge.ts';
 import { withoutRound } from './round.ts';
+import { trialSteps } from './step-groups.ts';
 
 /** Where and what to learn. Lengths in ticks from the start of the completed history. */
 export interface LearnInput {
@@ -37,10 +41,14 @@ export interface LearnOutput {
   /** Moments of the calibration part, of the chosen bank: they judge sizes. */
   readonly calibration: Moments;
   readonly usesLongGaps: boolean;
+  /** For people: what was left out, and why. */
+  readonly notes: readonly string[];
 }
 
 /** More states than this never paid within the byte limits met. */
 const MOST_DIRECTIONS = 96;
+/** Entries of the map, a dozen copies of which live at once: some 4 GB. */
+const MOST_ENTRIES = 4e7;
 /** Share by which each variance is raised, and the least share of the largest variance that counts as one. */
 const RAISED = 1e-9;
 const SILENT = 1e-6;
@@ -61,18 +69,45 @@ export function learn(given: LearnInput): LearnOutput {
   const settle = (input.round?.ticks ?? 0) + Math.min(settlingTicks(widest), Math.floor(learnTicks / 8));
   const cut = partition(learnTicks, calibrateTicks, settle, horizon, filled.inLongGap);
   const layout = layoutOf(input, widest);
-  const { early, late, between } = gatherPartition(input, widest, cut);
-  const choice = choose([...early, ...late], widest, layout);
+  requireRoom(layout);
+  const trials = trialSteps(horizon);
+  const gathered = gatherCut(momentInput(input, widest), layout, cut, trials.steps);
+  const choice = choose(gathered.groups, widest, layout, trials);
   const steps = Array.from({ length: horizon }, (_, k) => k + 1);
   const pick = (moments: Moments): Moments => pickMoments(moments, layout, choice.kept, steps);
-  const learning = pick(addMoments([...early, ...between]));
-  const calibration = pick(addMoments(late.length > 0 ? late : early.slice(-1)));
   return {
     choice,
-    learned: mapAndDirections(learning, { ...layout, featureCount: choice.kept.length }, choice),
-    calibration,
+    learned: mapAndDirections(pick(gathered.learning), { ...layout, featureCount: choice.kept.length }, choice),
+    calibration: pick(gathered.calibration),
     usesLongGaps: cut.usesLongGaps,
+    notes: widthNotes(input, layout, trials.steps.length),
   };
+}
+
+/** Refuses what would not fit the memory, before it is asked for. */
+function requireRoom({ channelCount, signalCount, featureCount: F, steps }: Layout): void {
+  if (channelCount * F * signalCount * steps <= MOST_ENTRIES) return;
+  throw new TrainError(
+    'fit',
+    `${signalCount} signals over a horizon of ${steps} ticks are too many for one model, expected at most about ` +
+      `${Math.floor(MOST_ENTRIES / (channelCount * F * signalCount))} ticks ahead. Shorten the horizon or raise the tick, or divide ` +
+      'the signals among several site files.',
+    { details: { signalCount, steps } },
+  );
+}
+
+/** What a plant of many channels goes without. */
+function widthNotes(input: LearnInput, layout: Layout, trials: number): string[] {
+  const { channelCount, featureCount: F } = layout;
+  const alone = featureCount(designBank({ ...input, channelCount: 1 }));
+  if (F >= alone) return [];
+  const cross = isWithinReach({ ...layout, steps: trials }, channelCount * F)
+    ? ''
+    : ' What signals say of each other is left out as well.';
+  return [
+    `${channelCount} signals and inputs are many for one model: of each one's past ${F} features are kept in place of ${alone}.${cross} ` +
+      'Dividing them among several site files forecasts them better.',
+  ];
 }
 
 /**
@@ -89,7 +124,7 @@ export function learnAgain(given: LearnInput, choice: Choice, ticks: number): Le
   const layout = layoutOf(input, choice.bank);
   const settle = (input.round?.ticks ?? 0) + Math.min(settlingTicks(choice.bank), Math.floor(ticks / 8));
   const blocks = usableBlocks(settle, ticks, input.horizon, input.filled.inLongGap);
-  return mapAndDirections(addMoments(gather(input, choice.bank, blocks)), layout, choice);
+  return mapAndDirections(gatherSum(momentInput(input, choice.bank), blocks), layout, choice);
 }
 
 /** What learning sees: the history less its rounds. */
@@ -133,29 +168,6 @@ function steadyCovariance(moments: Moments, layout: Layout): Float64Array {
   return covariance;
 }
 
-function gather(input: LearnInput, bank: Bank, blocks: readonly Block[]): Moments[] {
-  const { filled, signalCount, horizon } = input;
-  return gatherMoments({ values: filled.values, signalCount, bank, horizon }, blocks);
-}
-
-/** Moments of each group that has origins, in the learning part and after it, and of what lies between groups. */
-function gatherPartition(
-  input: LearnInput,
-  bank: Bank,
-  cut: Partition,
-): { readonly early: Moments[]; readonly late: Moments[]; readonly between: Moments[] } {
-  const tagged = [
-    ...cut.groups.flatMap((blocks, group) => blocks.map((block) => ({ block, group }))),
-    ...cut.between.map((block) => ({ block, group: -1 })),
-  ].sort((a, b) => a.block.fromIndex - b.block.fromIndex);
-  const blocks = tagged.map(({ block }) => block);
-  const moments = gather(input, bank, blocks);
-  const of = (wanted: number): Moments[] => moments.filter((_, k) => tagged[k].group === wanted);
-  const joined = cut.groups.map((_, group) => of(group)).map((parts) => (parts.length > 0 ? addMoments(parts) : null));
-  const present = (parts: readonly (Moments | null)[]): Moments[] => parts.filter((part) => part !== null);
-  return {
-    early: present(joined.slice(0, cut.learnGroups)),
-    late: present(joined.slice(cut.learnGroups)),
-    between: of(-1),
-  };
+function momentInput({ filled, signalCount, horizon }: LearnInput, bank: Bank): MomentInput {
+  return { values: filled.values, signalCount, bank, horizon };
 }

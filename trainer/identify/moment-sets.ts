@@ -34,6 +34,32 @@ export function addMoments(parts: readonly Moments[]): Moments {
 }
 
 /**
+ * Adds a block's moments into a sum, in place where there is one.
+ *
+ * shapes  alike; sum null: nothing yet, and the result is a copy
+ * units   sums over origins
+ * throws  nothing
+ * source  as `addMoments`
+ * cost    as `addMoments`
+ */
+export function addInto(sum: Moments | null, part: Moments): Moments {
+  if (sum === null) return copyOf(part);
+  for (const key of ['features', 'future', 'energy', 'featureSums', 'futureSums'] as const) addTo(sum[key], part[key]);
+  return { ...sum, origins: sum.origins + part.origins };
+}
+
+function copyOf({ origins, features, future, energy, featureSums, futureSums }: Moments): Moments {
+  return {
+    origins,
+    features: features.slice(),
+    future: future.slice(),
+    energy: energy.slice(),
+    featureSums: featureSums.slice(),
+    futureSums: futureSums.slice(),
+  };
+}
+
+/**
  * Moments of some features a channel and some steps.
  *
  * shapes  kept ascending feature indices within a channel; steps ascending, 1..H

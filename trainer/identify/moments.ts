@@ -53,6 +53,19 @@ export interface Block {
  * cost    O(T nc (p + nc H)) + O(p nc H + p²) a block
  */
 export function gatherMoments(input: MomentInput, blocks: readonly Block[]): Moments[] {
+  return [...eachMoments(input, blocks)];
+}
+
+/**
+ * The same, one block at a time, for those who add them up.
+ *
+ * shapes  as `gatherMoments`
+ * units   as `gatherMoments`
+ * throws  as `gatherMoments`
+ * source  as `gatherMoments`
+ * cost    as `gatherMoments`
+ */
+export function* eachMoments(input: MomentInput, blocks: readonly Block[]): Generator<Moments> {
   const { values, bank, horizon } = input;
   const ticks = values[0].length;
   for (const block of blocks) {
@@ -70,7 +83,7 @@ export function gatherMoments(input: MomentInput, blocks: readonly Block[]): Mom
     for (let c = 0; c < values.length; c++) phi[c * perChannel + poles.feature[poles.level]] = -values[c][0];
   }
   let at = 1;
-  return blocks.map((block) => {
+  for (const block of blocks) {
     for (; at < block.fromIndex; at++) advancePoles(poles, phi, changes, at);
     const before = phi.slice();
     const furthest = new Float64Array(phi.length * values.length);
@@ -78,8 +91,8 @@ export function gatherMoments(input: MomentInput, blocks: readonly Block[]): Mom
       advancePoles(poles, phi, changes, at);
       accumulate(furthest, phi, changes, at + horizon);
     }
-    return closeBlock(input, poles, changes, block, before, phi, furthest, rings);
-  });
+    yield closeBlock(input, poles, changes, block, before, phi, furthest, rings);
+  }
 }
 
 function difference(y: Float64Array): Float64Array {

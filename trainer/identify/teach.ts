@@ -46,9 +46,8 @@ const PASS_COVERAGE = 0.9;
 export function teach(prepared: Prepared): Taught {
   const round = chooseRound(learnInput(prepared, null), prepared.around.tickMs);
   const first = learn(learnInput(prepared, round));
-  const warnings = first.usesLongGaps
-    ? ['Long gaps cover more than half of the history; they had to be bridged and learned from.']
-    : [];
+  const gaps = 'Long gaps cover more than half of the history; they had to be bridged and learned from.';
+  const warnings = [...(first.usesLongGaps ? [gaps] : []), ...first.notes];
   const { choice, calibration: calibrationMoments, learned } = first;
   const isWhole = missingShare(prepared) < SECOND_PASS_SHARE;
   const passing = isWhole ? null : passingModel(prepared, first, round);
