@@ -10,6 +10,7 @@ import {
   bundleDigest,
   encodeBundle,
   type JudgeTable,
+  ProtocolError,
   quantiseTensor,
   type ResponseTensors,
   schemaHash,
@@ -78,7 +79,13 @@ export function composeBundle(parts: Composition): Bundle {
  * cost    one encoding
  */
 export function documentBytes(parts: Composition): number {
-  return encodeBundle(bundleWithoutProbe(parts)).length;
+  try {
+    return encodeBundle(bundleWithoutProbe(parts)).length;
+  } catch (error) {
+    // Too long for any limit is a length too: whoever asks says what to do about it.
+    if (error instanceof ProtocolError && error.code === 'size') return error.details.bytes as number;
+    throw error;
+  }
 }
 
 function bundleWithoutProbe(parts: Composition): Bundle {
