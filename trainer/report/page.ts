@@ -7,15 +7,20 @@ import type { Survey } from '../history/survey.ts';
 import type { Hindcast } from '../judge/hindcast.ts';
 import type { FitResult } from '../pipeline.ts';
 import { spanText } from '../text-table.ts';
+import { blockTable } from './block-table.ts';
 import { palette } from './chart.ts';
 import { forecastChart } from './forecast-chart.ts';
 import { glance } from './glance.ts';
 import { escapeHtml, moment, percent, plainNumber, table, unitText } from './markup.ts';
+import { planTable } from './plan-table.ts';
+import { isLearnedAgain, record } from './record.ts';
+import { reliabilityChart, reliabilityWords } from './reliability-chart.ts';
 import { relianceTable } from './reliance-table.ts';
 import { autocorrelationChart, histogramChart } from './residual-chart.ts';
 import { coverageChart, errorChart } from './skill-chart.ts';
 import { skillTable } from './skill-table.ts';
 import { style } from './style.ts';
+import { worstDays } from './worst-days.ts';
 
 /** What the report is made of. */
 export interface ReportInput {
@@ -50,8 +55,13 @@ ${findings(survey, result)}
 on held-out time that the model never saw: 0 % is no better, 100 % would be perfect, below 0 % the rival is better.</p>
 ${skillTable(result.hindcast)}
 ${isLearnedAgain(result) ? '<p>After that it learned once more from the whole history, which is the model in the bundle.</p>' : ''}
-${verdictTable(result)}
+${verdictList(result)}
+${stretches(result)}
 ${resting(result)}
+${plans(result)}
+<h2>The worst of it first</h2>
+<p>When forecasts begun in that time missed most. Look there before trusting the rest.</p>
+${worstDays(result.hindcast)}
 <h2>Forecasts over held-out days</h2>
 <p>${key(palette.reading)}reading that came ${key(palette.ours)}forecast, issued at the left end of each piece
 ${key(palette.band)}bounds meant to hold ${percent(result.hindcast.nominalCoverage)} of the readings</p>
@@ -59,6 +69,7 @@ ${perSignal(result.hindcast, (signal) => forecastPlots(result.hindcast, signal))
 <h2>Error by distance, and how well the bounds held</h2>
 <p>${legend(result.hindcast)}</p>
 ${perSignal(result.hindcast, (signal) => pair(errorChart(result.hindcast, signal), coverageChart(result.hindcast, signal)))}
+${crossings(result)}
 <h2>What the next-tick forecast missed</h2>
 <p>Left: size of the misses beside the normal curve of the same spread (dashed). Right: bars outside the dashed band say
 that a miss still tells something about later ones, so there is more to learn.</p>
@@ -84,15 +95,34 @@ ${spanText(site.tickMs * hindcast.horizon)} ahead · bundle ${plainNumber(docume
 <p class="verdict${verdicts.hasSkill ? '' : ' bad'}"><strong>${escapeHtml(verdicts.sentence)}</strong></p>`;
 }
 
-function verdictTable({ verdicts }: FitResult): string {
-  return table(
-    ['signal', 'verdict', 'inside bounds'],
-    verdicts.signals.map((one) => [
-      `<strong>${escapeHtml(one.signal)}</strong>`,
-      escapeHtml(one.sentence),
-      percent(one.coverage),
-    ]),
-  );
+function verdictList({ verdicts }: FitResult): string {
+  return `<ul>${verdicts.signals.map(({ sentence }) => `<li>${escapeHtml(sentence)}</li>`).join('\n')}</ul>`;
+}
+
+function stretches({ verdicts }: FitResult): string {
+  const blocks = blockTable(verdicts);
+  if (blocks === '') return '';
+  return `<h3>Was it there all along?</h3>
+<p>The same over all steps, against the strongest obvious guess, by stretches of the held-out time. The last column says
+whether so much could be luck (test of Diebold and Mariano).</p>
+${blocks}`;
+}
+
+function plans({ planWorth }: FitResult): string {
+  if (planWorth === null) return '';
+  return `<h2>What a plan of the inputs is worth</h2>
+<p>Change of the squared error when forecasts are told what ${planWorth.inputs.map(escapeHtml).join(', ')} will do, beside
+not being told; and when what they are told is wrong. Measured on ${planWorth.origins} forecasts of held-out time.</p>
+${planTable(planWorth)}`;
+}
+
+function crossings({ hindcast }: FitResult): string {
+  const { reliability, tickMs } = hindcast;
+  if (reliability === null || reliability.count === 0) return '';
+  return `<h2>Were limits crossed as often as was said?</h2>
+<p>${escapeHtml(reliabilityWords(reliability, tickMs))} On the dashed line the chances are right; grey bars show how often such
+a chance was said.</p>
+<figure>${reliabilityChart(reliability)}</figure>`;
 }
 
 /** One block a signal, or one plain sentence where nothing was there to judge. */
@@ -166,30 +196,4 @@ function findings(survey: Survey, { warnings }: FitResult): string {
   const listed = rows.length > 0 ? table(['what', 'where and how much'], rows) : '<p>Nothing out of the ordinary.</p>';
   const warned = warnings.map((warning) => `<p class="caution">${escapeHtml(warning)}</p>`).join('');
   return listed + warned;
-}
-
-/** Whether the bundle holds more than what was judged. */
-function isLearnedAgain({ bundle, learn }: FitResult): boolean {
-  return bundle.provenance.lastMs >= learn.toTick * bundle.tickMs;
-}
-
-function record(result: FitResult): string {
-  const { bundle, chosen, audit, learn, calibrate } = result;
-  const tick = bundle.tickMs;
-  const again = `${moment(bundle.provenance.firstMs)} to ${moment(bundle.provenance.lastMs + tick)}`;
-  const hex = (bytes: Uint8Array): string => Buffer.from(bytes).toString('hex');
-  return table(
-    ['', ''],
-    [
-      ['learned from', `${moment(learn.fromTick * tick)} to ${moment(learn.toTick * tick)}`],
-      ...(isLearnedAgain(result) ? [['after judging, once more from', again]] : []),
-      ['penalties and bounds from', `${moment(calibrate.fromTick * tick)} to ${moment(calibrate.toTick * tick)}`],
-      ['state', `${chosen.order} numbers; ${chosen.kind} kind, ${escapeHtml(chosen.name)}`],
-      ['period', chosen.periodTicks > 0 ? spanText(chosen.periodTicks * tick) : 'none'],
-      ['rounding to integers cost', `${plainNumber(100 * (audit.ratio - 1))} % of the squared error`],
-      ['history digest', `<code>${hex(bundle.provenance.historyDigest)}</code>`],
-      ['survey digest', `<code>${hex(bundle.provenance.surveyDigest)}</code>`],
-      ['options', `<code>${escapeHtml(bundle.provenance.options)}</code>`],
-    ],
-  );
 }

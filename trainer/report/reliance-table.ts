@@ -12,10 +12,16 @@ export function relianceTable(reliance: Reliance, signals: readonly string[]): s
     `<strong>${escapeHtml(name)}</strong>`,
     ...reliance.channels.map((_, c) => {
       const rise = (reliance.ratio[i * nc + c] as number) - 1;
-      return `<span class="cell" style="${shade(rise)}">${rise >= 0.005 ? `+${percent(rise)}` : percent(rise)}</span>`;
+      return `<span class="cell" style="${shade(rise)}">${riseText(rise)}</span>`;
     }),
   ]);
   return table(['forecast of', ...reliance.channels.map((name) => `without ${escapeHtml(name)}`)], rows, 'skill');
+}
+
+/** Beyond ten times the figure itself says nothing more. */
+function riseText(rise: number): string {
+  if (rise > 9.99) return '&gt; +999 %';
+  return rise >= 0.005 ? `+${percent(rise)}` : percent(rise);
 }
 
 function shade(rise: number): string {

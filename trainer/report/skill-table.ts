@@ -27,7 +27,7 @@ export function strongestRival(hindcast: Hindcast, signal: number, step: number)
 }
 
 /** Green where it helps, red where a rival is better, pale near zero; the number stands in the cell all the same. */
-function shade(skill: number): string {
+export function shade(skill: number): string {
   if (!Number.isFinite(skill)) return '';
   const strength = Math.min(1, Math.abs(skill) / 0.5).toFixed(2);
   return skill >= 0 ? `background:rgb(0 158 115 / ${strength})` : `background:rgb(213 94 0 / ${strength})`;
