@@ -16,7 +16,7 @@ table.skill td { padding: 1px; } .cell { display: block; padding: .25rem .5rem; 
 .pair { display: grid; grid-template-columns: repeat(auto-fit, minmax(300px, 1fr)); gap: 1rem; }
 figure { margin: 0; } figcaption { color: #555; font-size: 13px; } svg { max-width: 100%; height: auto; }
 .key { display: inline-block; width: 1.6em; height: .6em; margin: 0 .3em 0 .9em; vertical-align: middle; }
-table.glance td { padding-right: 1rem; } .mood { display: inline-block; padding: .05rem .5rem; border-radius: .2rem; }
+td strong { white-space: nowrap; } table.glance td { padding-right: 1rem; } .mood { display: inline-block; padding: .05rem .5rem; border-radius: .2rem; }
 .mood.good { background: rgb(0 158 115 / .25); } .mood.fair { background: rgb(230 159 0 / .25); } .mood.bad { background: rgb(213 94 0 / .3); }
 code { font-size: 13px; overflow-wrap: anywhere; }
 @media print { body { max-width: none; padding: 0; } h2, h3 { break-after: avoid; } figure, table { break-inside: avoid; } }
