@@ -33,7 +33,7 @@ export function fitSummary(result: FitResult): string {
     '',
     ...verdicts.signals.map((verdict) => `  ${verdict.sentence}`),
     '',
-    ...[blockText(verdicts), crossingText(hindcast)].filter((text) => text !== ''),
+    ...[blockText(verdicts), crossingText(hindcast)].filter((text) => text !== '').map((text) => `${text}\n`),
     ...(result.planWorth === null ? [] : [planWorthText(result.planWorth)]),
     verdicts.sentence,
     `Bundle ${bytesText(result.document.length)}: ${chosen.kind} kind, ${chosen.name}; ` +

@@ -16,7 +16,7 @@ export function worstText(hindcast: Hindcast): string {
     k === 0 ? 'all signals' : (hindcast.signals[k - 1] as string),
     ...Array.from({ length: WORST }, (_, n) => {
       const spell = spells[n];
-      return spell === undefined ? '' : `${spellName(spell.fromMs, spellMs)} (${shortNumber(spell.timesUsual)} x)`;
+      return spell === undefined ? '' : `${spellName(spell.fromMs, spellMs)} (${shortNumber(spell.timesUsual, 2)} x)`;
     }),
   ]);
   const head = ['worst first', ...Array.from({ length: WORST }, (_, n) => `${n + 1}`)];
@@ -27,13 +27,14 @@ export function worstText(hindcast: Hindcast): string {
 export function blockText(verdicts: Verdicts): string {
   const [first] = verdicts.signals.filter((verdict) => verdict.blocks.length > 0);
   if (first === undefined || first.blocks.length < 2) return '';
-  const head = ['skill from', ...first.blocks.map((block) => new Date(block.fromMs).toISOString().slice(0, 16)), 'p'];
+  const stretchMs = first.blocks[0]!.toMs - first.blocks[0]!.fromMs;
+  const head = ['skill from', ...first.blocks.map((block) => spellName(block.fromMs, stretchMs)), 'p'];
   const rows = verdicts.signals
     .filter((verdict) => verdict.blocks.length > 0)
     .map(({ signal, blocks, test }) => [
       signal,
       ...blocks.map((block) => percent(block.skill)),
-      test === null ? '-' : test.pBetter.toPrecision(2),
+      test === null ? '-' : chance(test.pBetter),
     ]);
   const right = head.map((_, k) => k).slice(1);
   return (
@@ -55,6 +56,11 @@ export function crossingText({ reliability, tickMs }: Hindcast): string {
     `Crossings, asked ${count} times of ${which}: ${percent(crossed)} came; said and observed shares differ by ` +
     `${percent(meanGap)} on average, Brier score ${brier.toFixed(4)} (${brierOfShare.toFixed(4)} for always saying ${percent(crossed)}).${when}`
   );
+}
+
+/** Below a thousandth the figure says nothing more. */
+function chance(p: number): string {
+  return p < 0.001 ? '< 0.001' : p.toFixed(3);
 }
 
 function percent(share: number): string {
