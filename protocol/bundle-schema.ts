@@ -57,10 +57,11 @@ export const denseSchema = z.strictObject({
 /** Random features beside the linear kind. */
 export const featuresSchema = z.strictObject({
   seed,
-  width: positive,
   count: z.int().min(1).max(16_384),
   states: count,
   channels: z.array(count).max(MAX_CHANNELS),
+  lags: z.array(z.int().min(1).max(1024)).max(64),
+  scale: z.array(z.number().min(0).max(1e6)).max(4096 + MAX_CHANNELS),
   projection: tensorSchema,
   offset: tensorSchema,
   readout: tensorSchema,
@@ -84,6 +85,7 @@ export const switchedSchema = z.strictObject({
   dwellTicks: z.int().min(1).max(1_000_000),
   decays: z.array(share).min(1).max(16),
   limit: tensorSchema,
+  stops: tensorSchema,
   featureScale: tensorSchema,
   outlook: tensorSchema,
   outlookBasis: tensorSchema,
@@ -151,7 +153,11 @@ export const boundsSchema = z.strictObject({
 });
 
 /** When a reading is passed over. */
-export const guardSchema = z.strictObject({ rejectSd: positive, maxTicks: count });
+export const guardSchema = z.strictObject({
+  rejectSd: positive,
+  maxTicks: count,
+  confirmsJumps: z.literal(true).optional(),
+});
 
 /** Gates of trial and probation. */
 export const gatesSchema = z.strictObject({ worseRatio: positive, trialTicks: count, probationTicks: count });

@@ -177,7 +177,12 @@ export interface Bundle {
     readonly crossingFresh?: number | undefined;
   };
   /** Readings further than rejectSd × residualScale from their forecast are passed over, at most maxTicks in a row. */
-  readonly guard: { readonly rejectSd: number; readonly maxTicks: number };
+  readonly guard: {
+    readonly rejectSd: number;
+    readonly maxTicks: number;
+    /** A second reading as far off as the first is taken for a jump and folded in; absent: it is passed over too. */
+    readonly confirmsJumps?: true | undefined;
+  };
   readonly warmupTicks: number;
   /** Gates of trial and probation: largest accepted ratio of squared error to the serving bundle's, and ticks watched. */
   readonly gates: { readonly worseRatio: number; readonly trialTicks: number; readonly probationTicks: number };

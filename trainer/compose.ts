@@ -117,7 +117,7 @@ function bundleWithoutProbe(parts: Composition): Bundle {
       ...(calibration.crossingMap === undefined ? {} : { crossing: Array.from(calibration.crossingMap) }),
       ...(calibration.crossingFresh === undefined ? {} : { crossingFresh: calibration.crossingFresh }),
     },
-    guard: { rejectSd: calibration.rejectSd, maxTicks: calibration.rejectMaxTicks },
+    guard: { rejectSd: calibration.rejectSd, maxTicks: calibration.rejectMaxTicks, confirmsJumps: true },
     warmupTicks: around.warmupTicks,
     gates: { worseRatio: WORSE_RATIO, trialTicks: gateTicks, probationTicks: gateTicks },
     provenance: provenanceOf(parts, series),

@@ -72,6 +72,7 @@ function commonOf(bundle: Bundle): Omit<CommonModel, 'order'> {
     radius: dequantise(bundle.bounds.radius),
     rejectSd: bundle.guard.rejectSd,
     rejectMaxTicks: bundle.guard.maxTicks,
+    ...(bundle.guard.confirmsJumps === true ? { confirmsJumps: true } : {}),
     warmupTicks: bundle.warmupTicks,
     ...(bundle.response === undefined ? {} : { response: responseOf(bundle.response) }),
     ...(bundle.round === undefined

@@ -48,6 +48,8 @@ export interface CommonModel {
   readonly radius: Float64Array;
   readonly rejectSd: number;
   readonly rejectMaxTicks: number;
+  /** Whether a second reading as far off as the one passed over before it is taken for a jump; absent: it is not. */
+  readonly confirmsJumps?: boolean;
   readonly warmupTicks: number;
   /** What a plan of the inputs adds; absent: nothing, or the kind takes plans itself. */
   readonly response?: ResponseModel;

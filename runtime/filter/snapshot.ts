@@ -9,7 +9,7 @@
  * | 6  | 2 | arithmetic version |
  * | 8  | 4 | CRC-32 of the model's shapes, poles, lags and scaling: another model refuses the snapshot |
  * | 12 | 8 | tick, float64 |
- * | 20 | … | state: per channel started u8, passed u16, age u32, then float64 value and what the kind keeps of the channel |
+ * | 20 | … | state: per channel started u8, passed u16, age u16, lean i16, then float64 value and what the kind keeps of the channel |
  * |    |   | (linear: memories, ring oldest first), and after the channels what it keeps of no channel alone; then the |
  * |    |   | last round of every signal that has one, oldest first |
  * |    |   | bounds: warmed u32, radius and, unless tracked as in the first bundles, stretch float64 (ny × scored steps each), |
@@ -68,7 +68,8 @@ export function saveState(model: Model, state: FilterState): Uint8Array {
   for (let c = 0; c < model.channelCount; c++) {
     view.setUint8(at, state.started[c]);
     view.setUint16(at + 1, state.passed[c], true);
-    view.setUint32(at + 3, state.age[c], true);
+    view.setUint16(at + 3, state.age[c], true);
+    view.setInt16(at + 5, state.lean[c], true);
     at = putFloats(view, at + 7, state.value, c, c + 1);
     kernel.copyOut(model, state.core, c, numbers, 0);
     at = putFloats(view, at, numbers, 0, perChannel);
@@ -102,7 +103,8 @@ export function restoreState(model: Model, bytes: Uint8Array): FilterState {
   for (let c = 0; c < model.channelCount; c++) {
     state.started[c] = view.getUint8(at);
     state.passed[c] = view.getUint16(at + 1, true);
-    state.age[c] = view.getUint32(at + 3, true);
+    state.age[c] = view.getUint16(at + 3, true);
+    state.lean[c] = view.getInt16(at + 5, true);
     const isInRange =
       state.started[c] <= 1 && state.passed[c] <= model.rejectMaxTicks && state.age[c] <= 2 * fadeTicks(model);
     if (!isInRange) throw refusal('state', `channel ${c}`, 'counters in range', 'one beyond it');

@@ -56,6 +56,8 @@ export interface FilterState {
   readonly age: Int32Array;
   /** (nc) readings passed over, less those that came near their forecast since; 0 to rejectMaxTicks, where the guard opens. */
   readonly passed: Int32Array;
+  /** (nc) how far off the reading passed over last lay, in 64ths of the guard's width; 0: folded in since. */
+  readonly lean: Int16Array;
   /** What the kind remembers, and what follows from it; read and written by its kernel alone. */
   readonly core: Core;
   /** (d) the predictive state */
@@ -90,6 +92,7 @@ export function createState(model: Model): FilterState {
     started: new Uint8Array(nc),
     age: new Int32Array(nc).fill(2 * fadeTicks(model)),
     passed: new Int32Array(nc),
+    lean: new Int16Array(nc),
     core,
     x: core.x,
     response: model.response === undefined ? null : createResponseBuffers(model, model.response),

@@ -18,6 +18,7 @@ import { type FilterState, FOLDED, fadeTicks, MISSING, PASSED_OVER } from './sta
  * passed over is counted, each one near its forecast takes one off the count, and at rejectMaxTicks the guard stands open:
  * readings are folded in however far off, until they come near again. Were the count cleared by the first reading folded
  * in, a filter once thrown off its plant would pass over rejectMaxTicks of every rejectMaxTicks + 1 readings for ever.
+ * A model may ask that a second far reading in the same place be taken for what it is, a jump, and folded in at once.
  * Inputs are commands and setpoints, whose jumps are real: they are never passed over.
  *
  * shapes  readings (nc)
@@ -47,14 +48,16 @@ function observe(model: Model, state: FilterState, c: number, tick: number, read
   state.innovation[c] = z - state.predicted[c];
   const limit = guardLimit(model, state, c);
   const isFar = Math.abs(state.innovation[c]) > limit && !isUnguarded(model, state, c, tick);
-  if (isFar && state.passed[c] < model.rejectMaxTicks) {
+  if (isFar && state.passed[c] < model.rejectMaxTicks && !isConfirmed(model, state, c)) {
     state.passed[c]++;
+    state.lean[c] = leanOf(model, state, c);
     state.observed[c] = PASSED_OVER;
     replace(model, state, c, tick, state.predicted[c] + Math.min(limit, Math.max(-limit, state.innovation[c])));
     return;
   }
   state.observed[c] = FOLDED;
   state.age[c] = 0;
+  state.lean[c] = 0;
   if (!isFar && state.passed[c] > 0) state.passed[c]--;
   state.value[c] = z;
   const isFirst = state.started[c] === 0;
@@ -66,6 +69,18 @@ function observe(model: Model, state: FilterState, c: number, tick: number, read
 
 function guardLimit(model: CommonModel, state: FilterState, c: number): number {
   return model.rejectSd * model.residualScale[c] * Math.sqrt(state.age[c] + 1);
+}
+
+/** How far off a reading lies, in 64ths of the guard's width, as far as 16 bits go. */
+function leanOf(model: CommonModel, state: FilterState, c: number): number {
+  const widths = (64 * state.innovation[c]) / (model.rejectSd * model.residualScale[c]);
+  return Math.round(Math.min(32_767, Math.max(-32_767, widths)));
+}
+
+/** Whether a far reading lies where the one passed over before it lay, within half the guard's width: spikes do not repeat. */
+function isConfirmed(model: CommonModel, state: FilterState, c: number): boolean {
+  if (model.confirmsJumps !== true || state.lean[c] === 0) return false;
+  return Math.abs(leanOf(model, state, c) - state.lean[c]) <= 32;
 }
 
 /** Inputs, first readings, and signals of whose round nothing is known yet. */

@@ -107,6 +107,7 @@ export function commonPart(around: Surroundings, calibration: Calibration): Omit
     radius: calibration.radius,
     rejectSd: calibration.rejectSd,
     rejectMaxTicks: calibration.rejectMaxTicks,
+    confirmsJumps: true,
     warmupTicks: around.warmupTicks,
     ...(calibration.boundsLongRate === undefined ? {} : { boundsLongRate: calibration.boundsLongRate }),
     ...(calibration.crossingMap === undefined ? {} : { crossingMap: calibration.crossingMap }),

@@ -6,6 +6,8 @@ import {
   type LinearModel,
   MISSING,
   PASSED_OVER,
+  restoreState,
+  saveState,
   update,
 } from '@stillwell/runtime/filter';
 import { describe, expect, test } from 'vitest';
@@ -123,4 +125,38 @@ test('one set of buffers serves for ever', () => {
   expect(Object.values(state).filter((part) => ArrayBuffer.isView(part))).toSatisfy((after: unknown[]) =>
     after.every((buffer, k) => buffer === buffers[k]),
   );
+});
+
+describe('a jump that is confirmed', () => {
+  const model = { ...syntheticModel({ horizon: 6 }), confirmsJumps: true };
+  const settledState = () => {
+    const state = createState(model);
+    for (let n = 0; n < 50; n++) update(model, state, n, Float64Array.of(10, 13));
+    return state;
+  };
+
+  test('is folded in at its second reading, spikes apart are not', () => {
+    const jumped = settledState();
+    update(model, jumped, 50, Float64Array.of(16, 13));
+    expect(jumped.observed[0]).toBe(2);
+    update(model, jumped, 51, Float64Array.of(16.05, 13));
+    expect(jumped.observed[0]).toBe(1);
+    const spiked = settledState();
+    for (const [k, y] of [16, 4.5, 17.5].entries()) {
+      update(model, spiked, 50 + k, Float64Array.of(y, 13));
+      expect(spiked.observed[0]).toBe(2);
+    }
+  });
+
+  test('is remembered over a snapshot and a missing tick', () => {
+    const state = settledState();
+    update(model, state, 50, Float64Array.of(16, 13));
+    update(model, state, 51, Float64Array.of(Number.NaN, 13));
+    const again = restoreState(model, saveState(model, state));
+    for (const one of [state, again]) {
+      update(model, one, 52, Float64Array.of(16, 13));
+      expect(one.observed[0]).toBe(1);
+    }
+    expect(saveState(model, again)).toEqual(saveState(model, state));
+  });
 });
