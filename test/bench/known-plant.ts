@@ -41,11 +41,21 @@ export function knownPlant(ticks: number, seed: number): KnownPlant {
     let x = 0;
     return Float64Array.from({ length: ticks }, () => {
       x = a * x + q * normal();
-      return STEP * Math.round((x + r * normal()) / STEP);
+      return printed(x + r * normal());
     });
   });
-  const names = PROCESSES.map((_, i) => `signal-${i}`);
-  const signals = names.flatMap((name) => [`  - name: ${name}`, "    unit: '1'"]);
+  return {
+    input: historyOf(values, []),
+    optimum: (from) =>
+      PROCESSES.reduce((sum, process, i) => sum + exactError(process, values[i]!, from), 0) / PROCESSES.length,
+  };
+}
+
+/** A history of the plant with its site: signals, then inputs, printed to a millionth. */
+export function historyOf(signals: readonly Float64Array[], inputs: readonly Float64Array[]): KnownPlant['input'] {
+  const values = [...signals, ...inputs];
+  const names = values.map((_, i) => (i < signals.length ? `signal-${i}` : `input-${i - signals.length}`));
+  const channel = (name: string): readonly string[] => [`  - name: ${name}`, "    unit: '1'"];
   const text = [
     'site: known',
     'class: plant',
@@ -53,26 +63,28 @@ export function knownPlant(ticks: number, seed: number): KnownPlant {
     'tick: 20s',
     `horizon: ${HORIZON}`,
     'signals:',
-    ...signals,
+    ...names.slice(0, signals.length).flatMap(channel),
+    ...(inputs.length > 0 ? ['inputs:', ...names.slice(signals.length).flatMap(channel)] : []),
   ];
   return {
-    input: {
-      series: {
-        tickMs: 20_000,
-        firstTick: 85_000_000,
-        ticks,
-        names,
-        signalCount: values.length,
-        values,
-        digest: new Uint8Array(32),
-      },
-      site: parseSite(`${text.join('\n')}\n`, 'bench site'),
-      survey: {},
-      lattices: names.map(() => ({ step: STEP, offset: 0 })),
+    series: {
+      tickMs: 20_000,
+      firstTick: 85_000_000,
+      ticks: values[0]!.length,
+      names,
+      signalCount: signals.length,
+      values,
+      digest: new Uint8Array(32),
     },
-    optimum: (from) =>
-      PROCESSES.reduce((sum, process, i) => sum + exactError(process, values[i]!, from), 0) / PROCESSES.length,
+    site: parseSite(`${text.join('\n')}\n`, 'bench site'),
+    survey: {},
+    lattices: names.map(() => ({ step: STEP, offset: 0 })),
   };
+}
+
+/** Rounded to what is printed. */
+export function printed(value: number): number {
+  return STEP * Math.round(value / STEP);
 }
 
 function exactError([a, q, r]: readonly [number, number, number], y: Float64Array, from: number): number {
@@ -99,7 +111,7 @@ function exactError([a, q, r]: readonly [number, number, number], y: Float64Arra
 }
 
 /** Box and Muller (1958) on a 32-bit shift-register sequence (Marsaglia, 2003). */
-function normals(seed: number): () => number {
+export function normals(seed: number): () => number {
   const uniform = uniforms(seed);
   return () => Math.sqrt(-2 * Math.log(1 - uniform())) * Math.cos(2 * Math.PI * uniform());
 }
