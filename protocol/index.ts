@@ -1,6 +1,7 @@
 export * from './bundle.ts';
 export { bundleDigest, decodeBundle, encodeBundle } from './bundle-document.ts';
 export type { DrivenTensors, FeatureTensors } from './bundle-features.ts';
+export type { SwitchedCorrectionTensors, SwitchedTensors } from './bundle-switched.ts';
 export { decode, encode } from './codec.ts';
 export { sha256, toHex } from './digest.ts';
 export { formatDuration, parseDuration } from './duration.ts';

@@ -5,13 +5,21 @@
 import { encode } from '@stillwell/protocol';
 import type { Model } from '@stillwell/runtime/filter';
 import { TrainError } from '../errors.ts';
+import { tryDriven } from '../featured/driven.ts';
+import { tryFeatured } from '../featured/featured.ts';
 import { signalErrors } from '../quantise/audit.ts';
+import { trySwitched } from '../switched/switched.ts';
 import type { Attempt, Candidate, TryKind } from './candidate.ts';
+import { tryDense } from './dense.ts';
 import { tryLinear } from './linear.ts';
 
 /** Kinds in the order in which they are tried. */
 const KINDS: Readonly<Record<Model['kind'], TryKind>> = {
   linear: tryLinear,
+  dense: tryDense,
+  featured: tryFeatured,
+  switched: trySwitched,
+  driven: tryDriven,
 };
 
 /** A larger bundle is taken only for this gain in squared error, on geometric average over the signals. */
