@@ -30,6 +30,8 @@ export interface WetWellDesign {
   /** Strength of the daily course, 0 … 1, and the weekend's share of a weekday's flow. */
   readonly dailySwing: number;
   readonly weekendShare: number;
+  /** Strength of the dry-weather inflow's wander, 1 unless given: a large catchment's many sources even out. */
+  readonly wander?: number;
   readonly rain: Rain;
   readonly hasGauge: boolean;
 }
@@ -130,7 +132,7 @@ export class WetWell implements Plant {
     for (let i = 0; i < WANDERS.length; i++) {
       const keep = Math.exp(-dt / WANDERS[i].seconds);
       wanders[i] = keep * wanders[i] + WANDERS[i].share * Math.sqrt(1 - keep * keep) * random.normal();
-      wander += wanders[i];
+      wander += (design.wander ?? 1) * wanders[i];
     }
     const dry = design.meanInflow * dailyShare(design, nowMs) * Math.max(0.1, 1 + wander);
     return dry + this.rain.runoff;
