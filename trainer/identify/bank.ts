@@ -32,6 +32,8 @@ export interface BankWish {
 /** Time constants of the resonators, in periods: one day, three days, a week where the period is a day. */
 const RESONATOR_PERIODS = [1, 3, 7] as const;
 const HARMONICS = 6;
+/** Harmonics of the smallest bank that knows the period. */
+const FEW_HARMONICS = 2;
 /** Further periods, whose shape matters less, get fewer of either. */
 const OTHER_PERIODS = [1, 3] as const;
 const OTHER_HARMONICS = 3;
@@ -62,6 +64,7 @@ const LEAST_FEATURES = 6;
 export function designBank(wish: BankWish): Bank {
   const { periodTicks, otherPeriods, horizon, learnTicks, channelCount } = wish;
   const longest = learnTicks / 10;
+  const longestTurn = learnTicks / 4;
   const horizons = periodTicks > 0 ? SLOWEST_MEAN_HORIZONS : SLOWEST_WITHOUT_PERIOD;
   const wanted = Math.max(SLOWEST_MEAN_PERIODS * periodTicks, horizons * horizon, 16);
   const decays: number[] = [];
@@ -69,11 +72,12 @@ export function designBank(wish: BankWish): Bank {
   const resonators: (readonly [number, number])[] = [];
   const rungs: number[] = [];
   if (periodTicks > 0) {
-    resonators.push(...resonatorsOf(periodTicks, RESONATOR_PERIODS, HARMONICS, longest));
-    rungs.push(Math.ceil(resonators.length / 3), resonators.length);
+    resonators.push(...resonatorsOf(periodTicks, RESONATOR_PERIODS, HARMONICS, longestTurn));
+    const first = Math.min(HARMONICS, Math.ceil(periodTicks / 2) - 1);
+    rungs.push(Math.min(FEW_HARMONICS, first), first, resonators.length);
   }
   for (const other of otherPeriods) {
-    resonators.push(...resonatorsOf(other, OTHER_PERIODS, OTHER_HARMONICS, longest));
+    resonators.push(...resonatorsOf(other, OTHER_PERIODS, OTHER_HARMONICS, longestTurn));
     rungs.push(resonators.length);
   }
   if (periodTicks === 0) {

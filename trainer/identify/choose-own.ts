@@ -40,7 +40,7 @@ const PENALTIES = [0.001, 0.003, 0.01, 0.03, 0.1, 0.3, 1, 3] as const;
 /** Where the heaviest of those is the best for some group, heavier ones are tried up to this; beyond lies the last value. */
 const HEAVIEST = 100;
 /** Where the lightest is, lighter ones down to this: plants with next to no noise. */
-const LIGHTEST = 1e-6;
+const LIGHTEST = 1e-5;
 const HALF_DECADE = Math.sqrt(10);
 /** A heavier penalty within this share of the best is preferred. */
 const TIE = 0.001;

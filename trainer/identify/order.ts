@@ -4,7 +4,7 @@
  * are judged on readings the map was not learned from.
  */
 
-import { type Factors, floatFactors, type Learned, mapOf, type Size } from '../quantise/quantise.ts';
+import { type Factors, type Learned, mapOf, roundedFactors, type Size } from '../quantise/quantise.ts';
 import { pickMoments } from './moment-sets.ts';
 import type { Moments } from './moments.ts';
 import { mapError } from './ridge.ts';
@@ -49,7 +49,7 @@ export function sizeBytes(size: Size, learned: Learned): number {
  * units   tensorBytes: what the tensors may take
  * throws  TrainError 'fit' from the solves
  * source  none
- * cost    a few floatFactors and errors by moments
+ * cost    a few roundedFactors and errors by moments
  */
 export function chooseSize(learned: Learned, judge: Moments, tensorBytes: number): Size {
   const { layout } = learned;
@@ -63,7 +63,7 @@ export function chooseSize(learned: Learned, judge: Moments, tensorBytes: number
   );
   if (sizes.length === 0) return { order: 1, basisCount: 1, hasOwn: false };
   const judged = sizes.map((one): Judged => {
-    const factors = atSteps(floatFactors(learned, one.size), steps);
+    const factors = atSteps(roundedFactors(learned, one.size).factors, steps);
     const error = mapError(picked, trial, mapOf(factors, trial)).reduce((sum, value) => sum + value, 0);
     return { ...one, error, bytes: sizeBytes(one.size, learned) };
   });

@@ -10,8 +10,6 @@ const SHORTEST_PERIOD_TICKS = 4;
 const LONGEST_PERIOD_TICKS = 2000;
 /** A period must have come round this often in the learning part. */
 const LEAST_PERIODS = 3;
-/** The week, whose few rounds would be followed too closely, this often. */
-const LEAST_WEEKS = 8;
 /** Power of a peak over the median of its surroundings; averaged Hann segments of plain red noise stay below it. */
 const CLEAR_RATIO = 12;
 /** The same for a single signal's spectrum, of which there are many. */
@@ -29,13 +27,12 @@ const OTHER_HARMONICS = 3;
 export interface Periods {
   /** 0: none. */
   readonly main: number;
-  /** No harmonics of it or of each other; the strongest first, the week before all others. */
+  /** No harmonics of it or of each other; the strongest first. */
   readonly others: readonly number[];
 }
 
 /**
- * Finds the periods: the day or the strongest peak, then the week where the day is the main one and the history holds
- * enough of them, then what else stands clear in the spectrum of all signals or of one.
+ * Finds the periods: the day or the strongest peak, then what else stands clear in the spectrum of all signals or of one.
  *
  * shapes  values (n) of (learnTicks), complete
  * units   standardised; result in ticks
@@ -47,8 +44,7 @@ export function findPeriods(values: readonly Float64Array[], tickMs: number): Pe
   const ticks = values[0].length;
   const day = Math.round(DAY_MS / tickMs);
   const isDaily = day >= SHORTEST_PERIOD_TICKS && day <= LONGEST_PERIOD_TICKS && ticks >= LEAST_PERIODS * day;
-  const week = 7 * day;
-  const others = isDaily && week <= LONGEST_PERIOD_TICKS && ticks >= LEAST_WEEKS * week ? [week] : [];
+  const others: number[] = [];
   const peaks = spectralPeaks(values, CLEAR_RATIO);
   const main = isDaily ? day : (peaks.find(({ isRepeated }) => isRepeated)?.period ?? 0);
   if (main === 0) return { main, others: [] };

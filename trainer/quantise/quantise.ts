@@ -17,6 +17,7 @@ import {
 import { type Apart, ownCoefficients } from '../identify/own-part.ts';
 import { type Layout, ownFeatures } from '../identify/ridge.ts';
 import { multiply, transpose } from '../linalg/products.ts';
+import { replacements, roundRows } from './feedback.ts';
 import { featureExponents } from './scales.ts';
 
 /** What was learned, before it is made small. */
@@ -64,7 +65,14 @@ export interface FactorTensors {
   readonly horizonBasis: Tensor;
 }
 
-type Round = (values: Float64Array, rows: number, cols: number, type: 'i8' | 'i16') => Float64Array;
+/** Rounds a factor, remembers its tensor and gives back what it holds; `replaced` tells which columns are alike. */
+type Round = (
+  name: 'bottleneck' | 'readout' | 'own' | 'horizonBasis',
+  values: Float64Array,
+  rows: number,
+  cols: number,
+  replaced: ((row: number) => Float64Array) | null,
+) => Float64Array;
 
 /**
  * The small model without rounding.
@@ -76,7 +84,7 @@ type Round = (values: Float64Array, rows: number, cols: number, type: 'i8' | 'i1
  * cost    O(order p² + ny steps order p)
  */
 export function floatFactors(learned: Learned, size: Size): Factors {
-  return makeFactors(learned, size, (values) => values);
+  return makeFactors(learned, size, (_name, values) => values);
 }
 
 /**
@@ -92,20 +100,23 @@ export function roundedFactors(
   learned: Learned,
   size: Size,
 ): { readonly factors: Factors; readonly tensors: FactorTensors } {
-  const round: Round = (values, rows, cols, type) => dequantise(quantiseTensor(values, rows, cols, type));
+  const held = new Map<string, Tensor>();
+  const round: Round = (name, values, rows, cols, replaced) => {
+    const tensor =
+      replaced === null ? quantiseTensor(values, rows, cols, 'i16') : roundRows(values, rows, cols, replaced);
+    held.set(name, tensor);
+    return dequantise(tensor);
+  };
   const factors = makeFactors(learned, size, round);
-  const { layout } = learned;
-  const { order, basisCount, hasOwn } = size;
-  const p = layout.channelCount * layout.featureCount;
-  const rows = layout.signalCount * basisCount;
+  const tensor = (name: string): Tensor => held.get(name) as Tensor;
   return {
     factors,
     tensors: {
-      featureExponents: exponentTensor(factors.exponents, layout),
-      bottleneck: quantiseTensor(factors.bottleneck, order, p, 'i8'),
-      readout: quantiseTensor(factors.readout, rows, order, 'i8'),
-      ...(hasOwn ? { own: quantiseTensor(factors.own, rows, factors.own.length / rows, 'i8') } : {}),
-      horizonBasis: quantiseTensor(factors.horizonBasis, layout.steps, basisCount, 'i16'),
+      featureExponents: exponentTensor(factors.exponents, learned.layout),
+      bottleneck: tensor('bottleneck'),
+      readout: tensor('readout'),
+      ...(size.hasOwn ? { own: tensor('own') } : {}),
+      horizonBasis: tensor('horizonBasis'),
     },
   };
 }
@@ -117,15 +128,16 @@ function makeFactors(learned: Learned, size: Size, round: Round): Factors {
   const exponents = featureExponents(covariance, p);
   const scaled = (hasOwn ? learned.apart : learned).bottleneck.directions.slice(0, order * p);
   for (let at = 0; at < scaled.length; at++) scaled[at] *= 2 ** -exponents[at % p];
-  const bottleneck = round(scaled, order, p, 'i8');
+  const bottleneck = round('bottleneck', scaled, order, p, () => alike(learned, exponents, null));
   const directions = bottleneck.map((value, at) => value * 2 ** exponents[at % p]);
   const moments = stateMoments(directions, order, covariance, hasOwn ? learned.apart.rest : learned.map, layout);
   const full = fullReadout(moments, order, layout);
   const found = hasOwn ? learned.curves : findCurves(full, moments.covariance, order, layout);
   const curves = firstCurves(found, layout.steps, basisCount);
-  const horizonBasis = round(curves, layout.steps, basisCount, 'i16');
+  const horizonBasis = round('horizonBasis', curves, layout.steps, basisCount, null);
   const coefficients = curveCoefficients(full, horizonBasis, order, layout, basisCount);
-  const readout = round(coefficients, layout.signalCount * basisCount, order, 'i8');
+  const states = replacements(moments.covariance, order);
+  const readout = round('readout', coefficients, layout.signalCount * basisCount, order, () => states);
   const small = { ...size, exponents, bottleneck, readout, horizonBasis, own: new Float64Array(0) };
   return hasOwn ? { ...small, own: ownPart(learned, small, directions, round) } : small;
 }
@@ -138,8 +150,7 @@ function ownPart(learned: Learned, small: Factors, directions: Float64Array, rou
   const p = layout.channelCount * layout.featureCount;
   const byFeature = transpose(directions, order, p);
   const cols = ownFeatures(layout, 0).length;
-  const out = new Float64Array(ny * r * cols);
-  for (let i = 0; i < ny; i++) {
+  const parts = Array.from({ length: ny }, (_, i) => {
     const columns = new Float64Array(p * steps);
     for (let f = 0; f < p; f++) {
       columns.set(map.subarray((f * ny + i) * steps, (f * ny + i + 1) * steps), f * steps);
@@ -150,11 +161,42 @@ function ownPart(learned: Learned, small: Factors, directions: Float64Array, rou
     for (let k = 0; k < wanted.length; k++) wanted[k] -= given[k];
     const chosen = ownFeatures(layout, i);
     const own = ownCoefficients(covariance, p, chosen, wanted, r);
+    const scaled = new Float64Array(r * cols);
     chosen.forEach((f, a) => {
-      for (let k = 0; k < r; k++) out[(i * r + k) * cols + a] = own[a * r + k] * 2 ** -exponents[f];
+      for (let k = 0; k < r; k++) scaled[k * cols + a] = own[a * r + k] * 2 ** -exponents[f];
     });
+    return scaled;
+  });
+  const joined = new Float64Array(ny * r * cols);
+  parts.forEach((part, i) => {
+    joined.set(part, i * r * cols);
+  });
+  return round('own', joined, ny * r, cols, (row) => alike(learned, exponents, Math.floor(row / r)));
+}
+
+/** Kept while a map is being made small at one size after another. */
+const ALIKE = new WeakMap<Learned, Map<number | null, Float64Array>>();
+
+/** How scaled features replace each other: all of them, or those of one signal's own part. */
+function alike(learned: Learned, exponents: Int8Array, signal: number | null): Float64Array {
+  const known = ALIKE.get(learned) ?? new Map<number | null, Float64Array>();
+  ALIKE.set(learned, known);
+  const found = known.get(signal);
+  if (found !== undefined) return found;
+  const { covariance, layout } = learned;
+  const p = layout.channelCount * layout.featureCount;
+  const chosen = signal === null ? Int32Array.from({ length: p }, (_, f) => f) : ownFeatures(layout, signal);
+  const n = chosen.length;
+  const scaled = new Float64Array(n * n);
+  for (let a = 0; a < n; a++) {
+    for (let b = 0; b < n; b++) {
+      const power = exponents[chosen[a]] + exponents[chosen[b]];
+      scaled[a * n + b] = covariance[chosen[a] * p + chosen[b]] * 2 ** power;
+    }
   }
-  return round(out, ny * r, cols, 'i8');
+  const made = replacements(scaled, n);
+  known.set(signal, made);
+  return made;
 }
 
 /** Exponents as they travel: int8 with every scale 1. */

@@ -92,10 +92,10 @@ describe('designBank', () => {
     const more = designBank({ ...wish, otherPeriods: [17] });
     expect(more.resonators.slice(0, 18)).toEqual(plain.resonators);
     expect(more.resonators.length).toBe(24);
-    expect(more.rungs).toEqual([6, 18, 24]);
+    expect(more.rungs).toEqual([2, 6, 18, 24]);
     const [re, im] = more.resonators[18]!;
     expect((2 * Math.PI) / Math.atan2(im, re)).toBeCloseTo(17, 9);
-    expect(bankSizes(more).map(({ resonators }) => resonators)).toEqual([0, 0, 6, 18, 24]);
+    expect(bankSizes(more).map(({ resonators }) => resonators)).toEqual([0, 0, 2, 6, 18, 24]);
   });
 
   it.each([16, 40, 200])('gives each of %i channels few enough features', (channelCount) => {

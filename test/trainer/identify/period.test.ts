@@ -30,11 +30,7 @@ describe('findPeriods', () => {
         [17.3, 2],
       ]),
     ];
-    expect(findPeriods(values, HOUR_MS)).toEqual({ main: 24, others: [168, 17] });
-  });
-
-  it('leaves the week out of a short history', () => {
-    expect(findPeriods([signal(800, [[24, 3]])], HOUR_MS)).toEqual({ main: 24, others: [] });
+    expect(findPeriods(values, HOUR_MS)).toEqual({ main: 24, others: [17] });
   });
 
   it('finds periods where no day is within reach, those of all signals before those of one', () => {

@@ -73,10 +73,10 @@ const size = { order: 8, basisCount: 6, hasOwn: false };
 describe('roundedFactors', () => {
   const { factors, tensors } = roundedFactors(learned, size);
 
-  it('moves the state by at most half a scale in any entry', () => {
+  it('moves the first column of the state, which makes up for no other, by at most half a scale', () => {
     const exact = floatFactors(learned, size).bottleneck;
     const got = dequantise(tensors.bottleneck);
-    for (let at = 0; at < exact.length; at++) {
+    for (let at = 0; at < exact.length; at += p) {
       const half = rowScale(tensors.bottleneck, Math.floor(at / p)) / 2;
       expect(Math.abs(got[at]! - exact[at]!)).toBeLessThanOrEqual(half * (1 + 1e-6));
     }
