@@ -27,7 +27,7 @@ const refuse = (path: string, what: string): never => {
  * throws  ProtocolError 'schema' or 'tensor' naming the field, expected and got
  */
 export const checkFeatures = (section: FeatureTensors, { channels, signals, basis, order }: SectionAround): void => {
-  const { count, states, channels: values, projection, offset, readout } = section;
+  const { count, states, channels: values, lags, scale, projection, offset, readout } = section;
   if (states > order) refuse('features.states', `expected at most the ${order} states there are, got ${states}`);
   for (const [k, channel] of values.entries()) {
     const least = k === 0 ? 0 : values[k - 1]! + 1;
@@ -35,10 +35,15 @@ export const checkFeatures = (section: FeatureTensors, { channels, signals, basi
       refuse(`features.channels[${k}]`, `expected a channel from ${least} to ${channels - 1}, got ${channel}`);
     }
   }
-  if (states + values.length === 0) refuse('features.states', 'expected at least one state or channel, got none');
+  for (const [k, lag] of lags.entries()) {
+    if (k > 0 && lag <= lags[k - 1]!) refuse(`features.lags[${k}]`, `expected a lag above ${lags[k - 1]}, got ${lag}`);
+  }
+  const seen = states + values.length * (1 + lags.length);
+  if (seen === 0) refuse('features.states', 'expected at least one state or channel, got none');
+  if (scale.length !== seen) refuse('features.scale', `expected ${seen} numbers, got ${scale.length}`);
   const corrections = projection.rows;
   if (corrections === 0) refuse('features.projection', 'expected at least one row, got none');
-  checkTensor(projection, corrections, count, QUANTISED, 'features.projection');
+  checkTensor(projection, corrections, order + count, QUANTISED, 'features.projection');
   checkTensor(offset, corrections, 1, FLOATS, 'features.offset');
   checkTensor(readout, signals * basis, corrections, QUANTISED, 'features.readout');
 };

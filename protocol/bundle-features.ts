@@ -1,21 +1,23 @@
 /**
  * The sections of the kinds with random features. Features are not carried but drawn from a seed, the same way everywhere
- * (runtime/filter/featured-draw.ts), and divided by a width.
+ * (runtime/filter/featured-draw.ts), and scaled.
  */
 import type { Tensor } from './tensor.ts';
 
 /** What the featured kind adds to the linear one; sizes: ny signals, r basis, q summary numbers, D features, k corrections. */
 export interface FeatureTensors {
   readonly seed: number;
-  /** Of the Gaussian kernel, in standard deviations of the summary; > 0. */
-  readonly width: number;
   /** D */
   readonly count: number;
   /** The summary: this many leading predictive states … */
   readonly states: number;
-  /** … then the present values of these channels, rising; q in all, at least one. */
+  /** … then the present values of these channels, rising, … */
   readonly channels: readonly number[];
-  /** (k × D) i8: correction u = P cos(Ω v + b) + offset. */
+  /** … then theirs at each of these lags in ticks, rising; q in all, at least one. */
+  readonly lags: readonly number[];
+  /** (q) one over the width of the Gaussian kernel along each of them, >= 0. */
+  readonly scale: readonly number[];
+  /** (k × (d + D)) i8: correction u = P [x; cos(Ω v + b)] + offset. */
   readonly projection: Tensor;
   /** (k × 1) f32 */
   readonly offset: Tensor;

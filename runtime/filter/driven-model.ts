@@ -11,7 +11,7 @@ export interface DrivenModel extends CommonModel {
   readonly kind: 'driven';
   readonly memberCount: number;
   readonly hiddenCount: number;
-  readonly featureCount: number;
+  readonly randomCount: number;
   /** (S·n × (n + nu + 1)): of state, inputs and a one */
   readonly linear: Float64Array;
   /** (S·n × D) */

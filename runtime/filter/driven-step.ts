@@ -37,7 +37,7 @@ export interface StepBuffers {
 export function createStepBuffers(model: DrivenModel): StepBuffers {
   const n = model.signalCount + model.hiddenCount;
   const nu = model.channelCount - model.signalCount;
-  const D = model.featureCount;
+  const D = model.randomCount;
   const part = (all: Float64Array, size: number, s: number): Float64Array => all.subarray(s * size, (s + 1) * size);
   return {
     members: Array.from({ length: model.memberCount }, (_, s) => ({

@@ -166,12 +166,12 @@ function paths(
 }
 
 function check(model: DrivenModel): void {
-  const { channelCount: nc, signalCount: ny, hiddenCount, memberCount: S, featureCount: D } = model;
+  const { channelCount: nc, signalCount: ny, hiddenCount, memberCount: S, randomCount: D } = model;
   const nu = nc - ny;
   requireWhole(nu, 'inputCount', 1, 4096);
   requireWhole(S, 'memberCount', 1, 64);
   requireWhole(hiddenCount, 'hiddenCount', 0, 64);
-  requireWhole(D, 'featureCount', 1, 4096);
+  requireWhole(D, 'randomCount', 1, 4096);
   requireWhole(model.settleTicks, 'settleTicks', 0, 1e9);
   const n = ny + hiddenCount;
   const J = model.fadeDecays.length;

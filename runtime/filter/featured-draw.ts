@@ -42,17 +42,17 @@ export function drawFeatures(seed: number, count: number, dims: number): Draw {
 }
 
 /**
- * Features for a kernel of some width.
+ * Features for a kernel of other widths, one for each argument.
  *
- * shapes  as drawFeatures
+ * shapes  scale (q): one over the width; result as drawFeatures
  * units   turns
  * throws  nothing
- * source  k(v) = exp(−|v|²/(2 width²)): frequencies divided by the width
+ * source  k(v) = exp(−Σ (scale v)²/2): frequencies times the scale
  * cost    as drawFeatures
  */
-export function widenedFeatures(seed: number, count: number, dims: number, width: number): Draw {
-  const { frequencies, phases } = drawFeatures(seed, count, dims);
-  return { frequencies: frequencies.map((frequency) => frequency / width), phases };
+export function scaledFeatures(seed: number, count: number, scale: ArrayLike<number>): Draw {
+  const { frequencies, phases } = drawFeatures(seed, count, scale.length);
+  return { frequencies: frequencies.map((frequency, k) => frequency * scale[k % scale.length]), phases };
 }
 
 /** Makes a row orthogonal to the rows of its block above it, its length kept; twice, since once leaves rounding behind. */

@@ -1,18 +1,19 @@
 /** From the sections of a bundle with random features to what the kernels compute with: features drawn, tensors dequantised. */
 import { type DrivenTensors, dequantise, type FeatureTensors } from '@stillwell/protocol';
 import type { DrivenModel } from './driven-model.ts';
-import { type Draw, widenedFeatures } from './featured-draw.ts';
+import { type Draw, scaledFeatures } from './featured-draw.ts';
 import type { FeaturedModel } from './featured-model.ts';
 import type { BankModel, CommonModel } from './model.ts';
 
 /** The correction of the featured kind. */
 export function correctionOf(section: FeatureTensors): Omit<FeaturedModel, keyof BankModel | 'kind'> {
-  const { seed, width, count, states, channels, projection, offset, readout } = section;
+  const { seed, count, states, channels, lags, scale, projection, offset, readout } = section;
   return {
     summaryStates: states,
     summaryChannels: Int32Array.from(channels),
+    summaryLags: Int32Array.from(lags),
     randomCount: count,
-    ...widenedFeatures(seed, count, states + channels.length, width),
+    ...scaledFeatures(seed, count, scale),
     correctionCount: projection.rows,
     projection: dequantise(projection),
     offset: dequantise(offset),
@@ -30,7 +31,7 @@ export function simulationOf(
     order: members * (common.signalCount + hidden),
     memberCount: members,
     hiddenCount: hidden,
-    featureCount: features,
+    randomCount: features,
     linear: dequantise(section.linear),
     featureGain: dequantise(section.gain),
     ...memberFeatures(section.seed, members, features, common.channelCount + hidden, section.width),
@@ -57,8 +58,9 @@ export function simulationOf(
 export function memberFeatures(seed: number, members: number, count: number, dims: number, width: number): Draw {
   const frequencies = new Float64Array(members * count * dims);
   const phases = new Float64Array(members * count);
+  const scale = new Float64Array(dims).fill(1 / width);
   for (let s = 0; s < members; s++) {
-    const drawn = widenedFeatures(seed + s, count, dims, width);
+    const drawn = scaledFeatures(seed + s, count, scale);
     frequencies.set(drawn.frequencies, s * count * dims);
     phases.set(drawn.phases, s * count);
   }

@@ -22,18 +22,50 @@ export interface FeatureChoice {
 const GROUPS = 6;
 /** Folds learn from at least this many groups. */
 const FIRST_FOLD = 3;
-const TRIAL_COUNT = 128;
-/** States beside the values, and widths as multiples of the square root of the number of dimensions. */
-const STATES = [0, 3, 8] as const;
-const WIDTHS = [0.5, 1, 2] as const;
+/** Features of a first look. */
+const TRIAL_COUNT = 96;
+/** Origins that choose. */
+const TRIAL_ORIGINS = 2400;
+/**
+ * Leading predictive states beside the values, each scaled by what it carries of the forecast to some power: 0 gives all of
+ * them one width, 1 measures pasts by how far apart their linear forecasts are.
+ */
+const SUMMARIES: readonly { states: number; power: number; lags?: readonly number[] }[] = [
+  { states: 0, power: 0 },
+  { states: 3, power: 0 },
+  { states: 8, power: 0.5 },
+  { states: 8, power: 1 },
+  { states: 16, power: 0.5 },
+  { states: 0, power: 0, lags: [1] },
+  { states: 0, power: 0, lags: [1, 2, 3] },
+  { states: 0, power: 0, lags: [2, 4, 6] },
+  { states: 0, power: 0, lags: [1, 2, 3, 5, 8] },
+  { states: 0, power: 0, lags: [3, 6, 9, 12, 15] },
+] as const;
+/** Numbers of a summary; in more dimensions a few hundred features cover nothing. */
+const MOST_NUMBERS = 20;
+/** Summaries whose widths are tried. */
+const FINALISTS = 2;
+/** Widths of the kernel, as multiples of the summary's own spread. */
+const WIDTHS = [0.5, 2] as const;
 const PENALTIES = [1e-6, 1e-5, 1e-4, 1e-3, 1e-2, 0.1, 1] as const;
+const LEAST_PENALTY = 1e-6;
 const COUNTS = [256, 512, 1024] as const;
 /** Channels whose values the features see; with more, distances between points say little. */
 const MOST_CHANNELS = 8;
 /** Twice as many features are taken only for this gain … */
-const COUNT_GAIN = 0.01;
+const COUNT_GAIN = 0.03;
 /** … and features at all only for that one, on the first look and at the end. */
 const LEAST_GAIN = 0.01;
+
+/** What a choice stands on beside the origins. */
+export interface ChoiceInput {
+  readonly seed: number;
+  readonly horizon: number;
+  readonly mostFeatures: number;
+  /** What each predictive state carries of the forecast, falling. */
+  readonly carried: Float64Array;
+}
 
 /**
  * Chooses; null where features do not surely gain.
@@ -42,45 +74,73 @@ const LEAST_GAIN = 0.01;
  * units   standardised
  * throws  TrainError 'fit' from the solves
  * source  rolling origin: Tashman, International Journal of Forecasting 16 (2000)
- * cost    some ten passes of 128 features, then up to three of more
+ * cost    a dozen passes of 96 features over a thinned record, then up to three of more
  */
-export function chooseFeatures(
-  origins: Origins,
-  seed: number,
-  horizon: number,
-  mostFeatures: number,
-): FeatureChoice | null {
-  const d = origins.states.length / origins.at.length;
-  const nc = origins.values.length / origins.at.length;
-  const channels = nc <= MOST_CHANNELS ? Array.from({ length: nc }, (_, c) => c) : [];
-  const base = { seed, count: TRIAL_COUNT, channels };
-  const groups = cutGroups(origins, horizon);
+export function chooseFeatures(all: Origins, input: ChoiceInput): FeatureChoice | null {
+  const origins = thinned(all, TRIAL_ORIGINS);
+  const groups = cutGroups(origins, input.horizon);
   const without = withoutFeatures(origins, groups);
-  let best: Tried | null = null;
-  const attempt = (setting: FeatureSetting): Tried => {
-    const tried = tryPenalties(origins, setting, groups, PENALTIES);
-    if (best === null || tried.mean < best.mean) best = tried;
-    return tried;
-  };
-  const states = [...new Set(STATES.map((count) => Math.min(count, d)))].filter((s) => s + channels.length > 0);
-  for (const count of states) {
-    const setting = { ...base, states: count };
-    attempt({ ...setting, width: Math.sqrt(count + channels.length) });
-  }
-  const first = best as unknown as Tried;
-  if (!(first.mean < geometricMean(without) * (1 - LEAST_GAIN / 2))) return null;
-  for (const width of WIDTHS) {
-    if (width !== 1) attempt({ ...first.setting, width: width * first.setting.width });
-  }
-  let chosen = best as unknown as Tried;
+  const attempt = (setting: FeatureSetting): Tried => tryPenalties(origins, setting, groups, PENALTIES);
+  const first = firstSettings(origins, input)
+    .map(attempt)
+    .sort((a, b) => a.mean - b.mean);
+  if (first.length === 0 || !(first[0].mean < geometricMean(without) * (1 - LEAST_GAIN / 2))) return null;
+  const wide = first
+    .slice(0, FINALISTS)
+    .flatMap(({ setting }) =>
+      WIDTHS.map((width) => attempt({ ...setting, scale: setting.scale.map((scale) => scale / width) })),
+    );
+  let chosen = least([...first, ...wide]);
   for (const count of COUNTS) {
-    if (count > mostFeatures) break;
-    const near = [chosen.penalty / 10, chosen.penalty, 10 * chosen.penalty];
+    if (count > input.mostFeatures) break;
+    const near = [chosen.penalty / 10, chosen.penalty, 10 * chosen.penalty].filter((one) => one >= LEAST_PENALTY);
     const more = tryPenalties(origins, { ...chosen.setting, count }, groups, near);
     if (more.mean > chosen.mean * (1 - COUNT_GAIN)) break;
     chosen = more;
   }
   return gainsSurely(chosen.errors, without, LEAST_GAIN) ? { setting: chosen.setting, penalty: chosen.penalty } : null;
+}
+
+function least(tried: readonly Tried[]): Tried {
+  return tried.reduce((best, one) => (one.mean < best.mean ? one : best));
+}
+
+/** Summaries that differ, at the width of their own spread. */
+function firstSettings(origins: Origins, { seed, carried, mostFeatures }: ChoiceInput): FeatureSetting[] {
+  const d = origins.states.length / origins.at.length;
+  const nc = origins.folded.values.length;
+  const channels = nc <= MOST_CHANNELS ? Array.from({ length: nc }, (_, c) => c) : [];
+  const count = Math.min(TRIAL_COUNT, mostFeatures);
+  const tried = SUMMARIES.map((summary) => ({ ...summary, states: Math.min(summary.states, d, carried.length) }));
+  const nameOf = ({ states, power, lags = [] }: (typeof tried)[number]): string => [states, power, ...lags].join(' ');
+  const distinct = tried.filter((one, k) => tried.findIndex((other) => nameOf(other) === nameOf(one)) === k);
+  return distinct.flatMap(({ states, power, lags = [] }) => {
+    const sizes = [
+      ...Array.from({ length: states }, (_, k) => (carried[k] / carried[0]) ** power),
+      ...Array.from({ length: channels.length * (1 + lags.length) }, () => 1),
+    ];
+    const spread = Math.hypot(...sizes);
+    const isSmall = spread > 0 && sizes.length <= MOST_NUMBERS;
+    return isSmall ? [{ seed, count, states, channels, lags, scale: sizes.map((size) => size / spread) }] : [];
+  });
+}
+
+/** Every so many origins. */
+function thinned(origins: Origins, most: number): Origins {
+  const n = origins.at.length;
+  const every = Math.ceil(n / most);
+  if (every <= 1) return origins;
+  const pick = (values: Float64Array): Float64Array => {
+    const width = values.length / n;
+    return values.filter((_, k) => Math.floor(k / width) % every === 0);
+  };
+  return {
+    at: origins.at.filter((_, k) => k % every === 0),
+    states: pick(origins.states),
+    folded: origins.folded,
+    targets: pick(origins.targets),
+    curves: origins.curves,
+  };
 }
 
 interface Tried {

@@ -6,7 +6,7 @@ import { dequantise, quantiseTensor, type Tensor } from '@stillwell/protocol';
 import { cholesky, solveCholesky } from '../linalg/cholesky.ts';
 import { symmetricEigen } from '../linalg/eigen.ts';
 import { multiply, multiplyTransposed, transpose } from '../linalg/products.ts';
-import type { FeatureMap, FeatureMoments } from './feature-moments.ts';
+import { type FeatureMap, type FeatureMoments, featureError } from './feature-moments.ts';
 import { planRounding, type RoundingPlan, roundRows } from './rounding.ts';
 
 /** Variance of a cosine at a random phase: penalties are relative to it. */
@@ -137,6 +137,26 @@ function readoutOf(
   for (let k = 0; k < count; k++) square[k * count + k] += READOUT_RIDGE * moments.origins;
   solveCholesky(cholesky(square, count), count, shared, m);
   return transpose(shared, count, m);
+}
+
+/**
+ * Squared error of the targets under a correction, clips aside.
+ *
+ * shapes  none
+ * units   standardised², summed over origins
+ * throws  nothing
+ * source  featureError
+ * cost    O(D² m)
+ */
+export function correctionError(moments: FeatureMoments, { count, projection, offset, readout }: Correction): number {
+  const D = moments.sum.length;
+  const m = moments.targetSum.length;
+  const across = transpose(readout, m, count);
+  const map = {
+    weights: multiply(transpose(projection, count, D), across, D, count, m),
+    offset: multiply(offset, across, 1, count, m),
+  };
+  return featureError(moments, map).reduce((sum, value) => sum + value, 0);
 }
 
 function negativeMeans({ sum, origins }: FeatureMoments, projection: Float64Array, count: number): Float64Array {

@@ -84,7 +84,7 @@ export function drivenModel(parts: DrivenParts, around: Surroundings, isRounded:
     order: members.length * states,
     memberCount: members.length,
     hiddenCount: setting.hiddenCount,
-    featureCount: setting.featureCount,
+    randomCount: setting.featureCount,
     linear: value(linear),
     featureGain: value(gain),
     ...memberFeatures(

@@ -133,7 +133,7 @@ const FIRST_TRY: Omit<Setting, 'hiddenCount'> = { featureCount: 40, width: 3, pe
 const WIDTHS = [2, 5] as const;
 const PENALTIES = [0.01, 1] as const;
 const TRIAL_SEEDS = [101, 102] as const;
-const TRIAL_ITERATIONS = 25;
+const TRIAL_ITERATIONS = 15;
 /** A hidden state more is taken only for this gain in squared error. */
 const HIDDEN_GAIN = 0.1;
 

@@ -2,21 +2,24 @@
  * Second moments of random features and of what they are to explain, group by group, so that folds, penalties and read-outs
  * are small algebra.
  */
-import { SUMMARY_LIMIT, widenedFeatures } from '@stillwell/runtime/filter';
+import { SUMMARY_LIMIT, scaledFeatures } from '@stillwell/runtime/filter';
 import type { Origins } from './origins.ts';
 
 /** What the features see, and how many there are. */
 export interface FeatureSetting {
   readonly seed: number;
   readonly count: number;
-  readonly width: number;
   /** Leading predictive states. */
   readonly states: number;
   /** Channels whose values follow, rising. */
   readonly channels: readonly number[];
+  /** Ticks, rising: their values at each of these follow. */
+  readonly lags: readonly number[];
+  /** (q) one over the kernel's width along each number of the summary. */
+  readonly scale: readonly number[];
 }
 
-/** Sums over origins. D features, m targets. */
+/** Sums over origins. D regressors, m targets. */
 export interface FeatureMoments {
   readonly origins: number;
   /** (D) */
@@ -35,7 +38,7 @@ const TURN = 2 * Math.PI;
 const BLOCK = 64;
 
 /**
- * Gathers moments of the origins from `from` to before `to`.
+ * Gathers moments of the origins from `from` to before `to`: of the predictive states, then the random features.
  *
  * shapes  as FeatureMoments; m = ny·r
  * units   standardised
@@ -44,7 +47,7 @@ const BLOCK = 64;
  * cost    O(n D² / 2 + n D (q + m))
  */
 export function gatherFeatures(origins: Origins, setting: FeatureSetting, from: number, to: number): FeatureMoments {
-  const D = setting.count;
+  const D = regressorCount(origins, setting);
   const { targets } = origins;
   const m = targets.length / origins.at.length;
   const moments = emptyMoments(D, m);
@@ -71,30 +74,46 @@ export function gatherFeatures(origins: Origins, setting: FeatureSetting, from: 
   return { ...moments, origins: to - from };
 }
 
-/** Writes the features of an origin. */
+/** Predictive states and random features together. */
+function regressorCount({ states, at }: Origins, setting: FeatureSetting): number {
+  return states.length / at.length + setting.count;
+}
+
+/** Writes states and features of an origin. */
 function featureEvaluator(
-  { states, values, at }: Origins,
+  origins: Origins,
   setting: FeatureSetting,
 ): (origin: number, out: Float64Array, to: number) => void {
-  const d = states.length / at.length;
-  const nc = values.length / at.length;
-  const q = setting.states + setting.channels.length;
-  const { frequencies, phases } = widenedFeatures(setting.seed, setting.count, q, setting.width);
+  const q = setting.scale.length;
+  const { frequencies, phases } = scaledFeatures(setting.seed, setting.count, setting.scale);
   const radians = frequencies.map((turns) => TURN * turns);
   const offsets = phases.map((turns) => TURN * turns);
   const v = new Float64Array(q);
+  const d = origins.states.length / origins.at.length;
   return (origin, out, to) => {
-    for (let k = 0; k < q; k++) {
-      const number =
-        k < setting.states ? states[origin * d + k] : values[origin * nc + setting.channels[k - setting.states]];
-      v[k] = Math.max(-SUMMARY_LIMIT, Math.min(SUMMARY_LIMIT, number));
-    }
+    writeSummary(origins, setting, origin, v);
+    for (let k = 0; k < d; k++) out[to + k] = clipped(origins.states[origin * d + k]);
     for (let j = 0; j < setting.count; j++) {
       let angle = offsets[j];
       for (let k = 0; k < q; k++) angle += radians[j * q + k] * v[k];
-      out[to + j] = Math.cos(angle);
+      out[to + d + j] = Math.cos(angle);
     }
   };
+}
+
+/** As the gateway will. */
+function writeSummary({ states, folded, at }: Origins, setting: FeatureSetting, origin: number, v: Float64Array): void {
+  const d = states.length / at.length;
+  let k = 0;
+  for (; k < setting.states; k++) v[k] = states[origin * d + k];
+  for (const lag of [0, ...setting.lags]) {
+    for (const c of setting.channels) v[k++] = folded.values[c][Math.max(0, at[origin] - lag - folded.from)];
+  }
+  for (let j = 0; j < k; j++) v[j] = clipped(v[j]);
+}
+
+function clipped(value: number): number {
+  return Math.max(-SUMMARY_LIMIT, Math.min(SUMMARY_LIMIT, value));
 }
 
 /** Lower triangle of Φ'Φ of a block, four rows at a time. */

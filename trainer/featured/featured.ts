@@ -3,13 +3,14 @@
  * saved. Learned from what the rounded linear map leaves over, so that the features mend its rounding too.
  */
 import { dequantise, type FeatureTensors, quantiseTensor } from '@stillwell/protocol';
-import { type FeaturedModel, type LinearModel, widenedFeatures } from '@stillwell/runtime/filter';
+import { type FeaturedModel, type LinearModel, scaledFeatures } from '@stillwell/runtime/filter';
 import type { Attempt, Candidate } from '../kinds/candidate.ts';
 import { linearOfSize, tryLinear } from '../kinds/linear.ts';
 import { chooseFeatures, type FeatureChoice } from './choose-features.ts';
-import { type Correction, reduceMap, ridgeFeatures, roundingOf } from './correction.ts';
-import { type FeatureSetting, gatherFeatures } from './feature-moments.ts';
+import { type Correction, correctionError, reduceMap, ridgeFeatures, roundingOf } from './correction.ts';
+import { type FeatureMap, type FeatureMoments, gatherFeatures } from './feature-moments.ts';
 import { gatherOrigins, type Origins, onModelCurves } from './origins.ts';
+import type { RoundingPlan } from './rounding.ts';
 
 /** Share of the bytes kept for the correction. */
 const CORRECTION_SHARE = 0.5;
@@ -18,6 +19,8 @@ const LEAST_ORIGINS = 300;
 /** States of the linear part where its own choice would have been another form. */
 const MOST_STATES = 24;
 const MOST_DIRECTIONS = 24;
+/** Heavier penalties than the chosen one that rounding may call for. */
+const PENALTIES_UP = [1, 10, 100] as const;
 
 /**
  * The featured candidate; null where random features do not surely gain on the linear map.
@@ -38,7 +41,12 @@ export function tryFeatured(attempt: Attempt): Candidate | null {
   const origins = originsOf(attempt, model, prepared.learnTicks + prepared.calibrateTicks);
   if (origins.at.length < LEAST_ORIGINS) return null;
   const most = Math.floor(reserve / 4);
-  const choice = chooseFeatures(origins, attempt.options.seed, model.horizon, most);
+  const choice = chooseFeatures(origins, {
+    seed: attempt.options.seed,
+    horizon: model.horizon,
+    mostFeatures: most,
+    carried: attempt.taught.learned.bottleneck.carried,
+  });
   if (choice === null) return null;
   return candidateOf(attempt, plain, choice, prepared.learnTicks);
 }
@@ -52,23 +60,21 @@ function candidateOf(attempt: Attempt, plain: Candidate, choice: FeatureChoice, 
   const rounded = plain.rounded as LinearModel;
   const origins = originsOf(attempt, rounded, ticks);
   const moments = gatherFeatures(origins, setting, 0, origins.at.length);
-  const map = ridgeFeatures(moments, penalty);
+  const maps = PENALTIES_UP.map((factor) => ridgeFeatures(moments, factor * penalty));
   const rounding = roundingOf(moments);
   for (let most = MOST_DIRECTIONS; most >= 1; ) {
-    const correction = reduceMap(moments, map, most, rounding);
+    const correction = leastRounded(moments, maps, most, rounding);
     const section = sectionOf(choice, correction, readoutOf(correction, origins, rounded));
-    const sections = { kind: 'featured' as const, linear: plain.sections.linear, features: section };
+    const sections = { ...plain.sections, kind: 'featured' as const, features: section };
     const left = attempt.bytesLeft(sections);
     if (left < 0) {
       most = Math.min(correction.count - 1, Math.floor(correction.count + left / setting.count));
       continue;
     }
-    const exact = reduceMap(moments, map, correction.count, null);
-    const exactReadout = readoutOf(exact, origins, rounded);
     return {
       kind: 'featured',
-      name: `${plain.name}; ${correction.count} corrections from ${setting.count} random features of ${summaryLength(setting)} numbers`,
-      float: modelOf(plain.float as LinearModel, choice, exact, exactReadout),
+      name: `${plain.name}; ${correction.count} corrections from ${setting.count} random features of ${setting.scale.length} numbers`,
+      float: floatOf(attempt, plain.float as LinearModel, choice, ticks, correction.count),
       rounded: modelOf(rounded, choice, correction, dequantise(section.readout)),
       sections,
       settled: settledOf(choice, rounded),
@@ -81,13 +87,35 @@ function candidateOf(attempt: Attempt, plain: Candidate, choice: FeatureChoice, 
   return null;
 }
 
-function settledOf({ setting, penalty }: FeatureChoice, model: LinearModel): Readonly<Record<string, unknown>> {
-  const { count: features, width, states } = setting;
-  return { order: model.order, basis: model.basisCount, features, width, states, penalty };
+/** Of maps under rising penalties the one that errs least once rounded: a light penalty's large weights may round badly. */
+function leastRounded(
+  moments: FeatureMoments,
+  maps: readonly FeatureMap[],
+  most: number,
+  rounding: RoundingPlan,
+): Correction {
+  const tried = maps.map((map) => reduceMap(moments, map, most, rounding));
+  const errors = tried.map((correction) => correctionError(moments, correction));
+  return tried[errors.indexOf(Math.min(...errors))];
 }
 
-function summaryLength({ states, channels }: FeatureSetting): number {
-  return states + channels.length;
+/** The same without rounding, learned from what the linear part without rounding leaves over. */
+function floatOf(
+  attempt: Attempt,
+  linear: LinearModel,
+  { setting, penalty }: FeatureChoice,
+  ticks: number,
+  count: number,
+): FeaturedModel {
+  const origins = originsOf(attempt, linear, ticks);
+  const moments = gatherFeatures(origins, setting, 0, origins.at.length);
+  const exact = reduceMap(moments, ridgeFeatures(moments, penalty), count, null);
+  return modelOf(linear, { setting, penalty }, exact, readoutOf(exact, origins, linear));
+}
+
+function settledOf({ setting, penalty }: FeatureChoice, model: LinearModel): Readonly<Record<string, unknown>> {
+  const { count: features, states, lags } = setting;
+  return { order: model.order, basis: model.basisCount, features, states, lags, penalty };
 }
 
 /** (ny·r × k) from the directions to each signal's coefficients on the model's curves. */
@@ -105,10 +133,11 @@ function sectionOf({ setting }: FeatureChoice, correction: Correction, readout: 
   const { projection, offset } = correction.tensors as NonNullable<Correction['tensors']>;
   return {
     seed: setting.seed,
-    width: setting.width,
     count: setting.count,
     states: setting.states,
     channels: setting.channels,
+    lags: setting.lags,
+    scale: setting.scale,
     projection,
     offset,
     readout: quantiseTensor(readout, readout.length / correction.count, correction.count, 'i8'),
@@ -126,8 +155,9 @@ function modelOf(
     kind: 'featured',
     summaryStates: setting.states,
     summaryChannels: Int32Array.from(setting.channels),
+    summaryLags: Int32Array.from(setting.lags),
     randomCount: setting.count,
-    ...widenedFeatures(setting.seed, setting.count, summaryLength(setting), setting.width),
+    ...scaledFeatures(setting.seed, setting.count, setting.scale),
     correctionCount: correction.count,
     projection: correction.projection,
     offset: correction.offset,
