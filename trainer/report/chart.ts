@@ -9,7 +9,7 @@ export const palette = {
   ours: '#0072b2',
   reading: '#000000',
   band: '#56b4e9',
-  rivals: ['#999999', '#e69f00', '#cc79a7', '#009e73', '#d55e00'],
+  rivals: ['#999999', '#e69f00', '#cc79a7', '#009e73', '#d55e00', '#f0e442'],
   nominal: '#d55e00',
 } as const;
 
