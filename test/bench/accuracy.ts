@@ -4,6 +4,7 @@
  */
 import { knownRows } from './accuracy-known.ts';
 import { openRows } from './accuracy-open.ts';
+import { planRows } from './accuracy-plans.ts';
 import { splitRows } from './accuracy-split.ts';
 import type { BenchOptions, Row } from './harness.ts';
 
@@ -11,5 +12,6 @@ import type { BenchOptions, Row } from './harness.ts';
 export async function* rows(options: BenchOptions): AsyncIterable<Row> {
   yield* splitRows(options);
   yield* knownRows(options);
+  yield* planRows(options);
   yield* openRows(options);
 }

@@ -7,9 +7,9 @@ import { nodeDisk } from '../../runtime/disk.ts';
 import { Gateway } from '../../runtime/gateway.ts';
 import type { Log } from '../../runtime/log.ts';
 import { FIT_DEFAULTS, fit as fitHistory } from '../../trainer/pipeline.ts';
+import { DEAD_TIME, GAIN, HORIZON, plannedHistory, plannedSite, stepResponse } from '../bench/planned-plant.ts';
 import { mosquittoMissing, startAedes, startMosquitto, type TestBroker } from '../support/broker.ts';
 import { testFolder } from '../support/folder.ts';
-import { DEAD_TIME, GAIN, HORIZON, plannedHistory, plannedSite, stepResponse } from '../support/planned-plant.ts';
 import { author, trusted } from '../support/running-site.ts';
 import { until } from '../support/until.ts';
 

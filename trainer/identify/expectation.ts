@@ -21,18 +21,25 @@ export interface Expectation {
 
 /** Relative to the variance of what is seen; light, since this is a projection more than a forecast. */
 const PENALTIES = [1e-4, 1e-3, 1e-2, 1e-1, 1] as const;
-/** A heavier penalty within this share of the best is not preferred: see above. */
+/** Share of what a map carries that its curves must keep. */
 const CURVE_SHARE = 0.995;
 const RAISED = 1e-9;
+
+/** What is expected before it is made small. */
+export interface ExpectationMap {
+  /** (q × q) sums of products of what is seen */
+  readonly gram: Float64Array;
+  /** (q × H) input's change at every step, of what is seen */
+  readonly map: Float64Array;
+}
 
 /**
  * Learns the expectation of one planned input.
  *
- * shapes  which 0 … np − 1 of np; result up to `most` curves, at least one
+ * shapes  which 0 … np − 1 of np
  * units   standardised
  * throws  TrainError 'fit' from the solves
- * source  ridge: Hoerl & Kennard, Technometrics 12 (1970); curves: reduced-rank regression, Izenman, J. Multivariate
- *         Analysis 5 (1975), equation 2.8 with the identity as weight
+ * source  ridge: Hoerl & Kennard, Technometrics 12 (1970)
  * cost    O(n q (q + H) + q³)
  */
 export function learnExpectation(
@@ -41,15 +48,27 @@ export function learnExpectation(
   which: number,
   planned: number,
   horizon: number,
-  most: number,
-): Expectation {
+): ExpectationMap {
   const penalty = choosePenalty(origins, folds, which, planned, horizon);
   const all = Array.from({ length: horizon }, (_, k) => k + 1);
   const { gram, right } = momentsOf(origins, which, planned, horizon, all, () => true);
   const q = origins.seenCount;
   const map = right.slice();
   solveCholesky(cholesky(penalised(gram, q, penalty), q), q, map, horizon);
-  return curvesOf(gram, map, q, horizon, most);
+  return { gram, map };
+}
+
+/**
+ * The best few curves of a map: directions of L'M, with L L' the moments of what is seen.
+ *
+ * shapes  result up to `most` curves, at least one
+ * units   standardised
+ * throws  TrainError 'fit' from the factorisations
+ * source  reduced-rank regression: Izenman, J. Multivariate Analysis 5 (1975), equation 2.8 with the identity as weight
+ * cost    O(q² (q + H))
+ */
+export function fewCurves({ gram, map }: ExpectationMap, horizon: number, most: number): Expectation {
+  return curvesOf(gram, map, Math.round(Math.sqrt(gram.length)), horizon, most);
 }
 
 /** Moments of what is seen, and its products with the input's changes at some steps; over origins that pass. */
@@ -118,7 +137,6 @@ function sum(parts: readonly Float64Array[]): Float64Array {
   return out;
 }
 
-/** The best few curves: directions of L'M, with L L' the moments of what is seen. */
 function curvesOf(gram: Float64Array, map: Float64Array, q: number, horizon: number, most: number): Expectation {
   const factor = cholesky(penalised(gram, q, RAISED), q);
   const carried = new Float64Array(q * horizon);

@@ -89,3 +89,45 @@ export function filterInto(
     out[(decays.length + 1) * horizon + h] = sum;
   }
 }
+
+/**
+ * What path and plan together missed.
+ *
+ * shapes  surprises (n × np·H), gain (ny × np·f), delay (ny × np); result (n × ny·S), NaN where missing
+ * units   standardised
+ * throws  nothing
+ * source  runtime/filter/response.ts
+ * cost    O(n np (f H + ny S f)) for f filters
+ */
+export function unanswered(
+  { count, steps, missed }: PlanOrigins,
+  surprises: Float64Array,
+  {
+    gain,
+    delay,
+    decays,
+  }: { readonly gain: Float64Array; readonly delay: Int32Array; readonly decays: readonly number[] },
+  ny: number,
+  np: number,
+  horizon: number,
+): Float64Array {
+  const f = decays.length + 2;
+  const S = steps.length;
+  const out = missed.slice();
+  const filtered = new Float64Array(f * horizon);
+  for (let n = 0; n < count; n++) {
+    for (let p = 0; p < np; p++) {
+      filterInto(surprises, (n * np + p) * horizon, horizon, decays, filtered);
+      for (let i = 0; i < ny; i++) {
+        for (let s = 0; s < S; s++) {
+          const at = steps[s] - 1 - delay[i * np + p];
+          if (at < 0) continue;
+          let sum = 0;
+          for (let b = 0; b < f; b++) sum += gain[(i * np + p) * f + b] * filtered[b * horizon + at];
+          out[(n * ny + i) * S + s] -= sum;
+        }
+      }
+    }
+  }
+  return out;
+}

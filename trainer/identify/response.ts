@@ -8,11 +8,12 @@ import type { Model, ResponseModel } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
 import type { TickSpan } from '../span.ts';
 import { findDelays } from './dead-time.ts';
-import { type Expectation, learnExpectation } from './expectation.ts';
+import { type Expectation, type ExpectationMap, fewCurves, learnExpectation } from './expectation.ts';
+import { impliedExpectation } from './implied-input.ts';
 import { cutFolds, type PlanFolds } from './plan-folds.ts';
 import { learnGains } from './plan-gains.ts';
 import { gatherPlanOrigins, looksAt, type PlanOrigins } from './plan-origins.ts';
-import { surprisesOf } from './plan-surprise.ts';
+import { type RoundedExpectation, surprisesOf, unanswered } from './plan-surprise.ts';
 import { geometricMean } from './sure-gain.ts';
 
 /** What plans bring, as the bundle holds it and ready to compute with. */
@@ -102,10 +103,9 @@ export function learnResponse(model: Model, series: Series, span: TickSpan, plan
   const decays = responseDecays(model.horizon);
   const origins = gatherPlanOrigins(model, series, span, moving, decays.length + 2);
   const folds = cutFolds(origins.at, model.horizon);
-  const found = [seenExpectation, lastValue]
-    .map((expect) =>
-      attempt(model, origins, folds, moving, decays, expect(origins, folds, moving.length, model.horizon)),
-    )
+  const bench: Bench = { model, origins, folds, planned: moving, decays };
+  const found = [seenExpectation(bench), lastValue(bench)]
+    .map((expected) => attempt(bench, expected))
     .reduce((best, one) => (geometricMean(one.ratio) < geometricMean(best.ratio) ? one : best));
   if (found.ratio.some((ratio) => ratio < 1)) return { response: found, warnings };
   const text = `${names(moving)}: knowing it ahead does not surely improve any forecast; plans are passed over.`;
@@ -121,52 +121,83 @@ function moves(model: Model, series: Series, span: TickSpan, u: number): boolean
   return moving >= LEAST_MOVING;
 }
 
-function seenExpectation(origins: PlanOrigins, folds: PlanFolds, planned: number, horizon: number): Expectation[] {
-  const most = curvesFor(planned, horizon);
-  return Array.from({ length: planned }, (_, k) => learnExpectation(origins, folds, k, planned, horizon, most));
+/** What every attempt learns from. */
+interface Bench {
+  readonly model: Model;
+  readonly origins: PlanOrigins;
+  readonly folds: PlanFolds;
+  readonly planned: readonly number[];
+  readonly decays: readonly number[];
+}
+
+function seenExpectation({ model, origins, folds, planned }: Bench): ExpectationMap[] {
+  return planned.map((_, k) => learnExpectation(origins, folds, k, planned.length, model.horizon));
 }
 
 /** Nothing but the last value: what remains where the state says nothing of an input. */
-function lastValue(origins: PlanOrigins, _: PlanFolds, planned: number, horizon: number): Expectation[] {
-  return Array.from({ length: planned }, () => ({
-    curves: 1,
-    readout: new Float64Array(origins.seenCount),
-    basis: new Float64Array(horizon),
-  }));
+function lastValue({ model, origins, planned }: Bench): ExpectationMap[] {
+  const q = origins.seenCount;
+  return planned.map(() => ({ gram: new Float64Array(q * q), map: new Float64Array(q * model.horizon) }));
 }
 
-function attempt(
-  model: Model,
-  origins: PlanOrigins,
-  folds: PlanFolds,
-  planned: readonly number[],
-  decays: readonly number[],
-  expectations: readonly Expectation[],
-): Response {
-  const { signalCount: ny, horizon: H } = model;
-  const np = planned.length;
-  const curves = Math.max(...expectations.map((expectation) => expectation.curves));
+/** Behind what is expected, and then once more behind what the paths imply. */
+function attempt(bench: Bench, expected: readonly ExpectationMap[]): Response {
+  const { model, origins, folds, planned, decays } = bench;
+  const first = answerTo(bench, roundedExpectation(bench, expected), null);
+  if (first.response.ratio.every((ratio) => ratio === 1)) return first.response;
+  const answer = { gain: first.response.model.gain, delay: first.response.model.delay, decays };
+  const left = unanswered(origins, first.surprises, answer, model.signalCount, planned.length, model.horizon);
+  const implied = expected.map((one, k) =>
+    impliedExpectation(origins, folds, one, left, answer, k, planned.length, model.horizon),
+  );
+  if (implied.every((one, k) => one === expected[k])) return first.response;
+  const second = answerTo(bench, roundedExpectation(bench, implied), first.response.model.delay).response;
+  return geometricMean(second.ratio) < geometricMean(first.response.ratio) ? second : first.response;
+}
+
+/** Expectations of all inputs as they stand after rounding, and their tensors. */
+interface Rounded extends RoundedExpectation {
+  readonly tensors: Pick<ResponseTensors, 'readout' | 'basis'>;
+}
+
+function roundedExpectation({ model, origins, planned }: Bench, maps: readonly ExpectationMap[]): Rounded {
+  const { horizon: H } = model;
+  const q = origins.seenCount;
+  const few = maps.map((map) => fewCurves(map, H, curvesFor(planned.length, H)));
+  const curves = Math.max(...few.map((one) => one.curves));
+  const rows = planned.length * curves;
   const stacked = (pick: (one: Expectation) => Float64Array, width: number): Float64Array => {
-    const out = new Float64Array(np * curves * width);
-    expectations.forEach((one, k) => void out.set(pick(one), k * curves * width));
+    const out = new Float64Array(rows * width);
+    few.forEach((one, k) => void out.set(pick(one), k * curves * width));
     return out;
   };
-  const readout = quantiseTensor(
-    stacked((one) => one.readout, origins.seenCount),
-    np * curves,
-    origins.seenCount,
-    'i16',
-  );
-  const basis = quantiseTensor(
-    stacked((one) => one.basis, H),
-    np * curves,
-    H,
-    'i8',
-  );
-  // Gains are learned behind the expectation as it stands after rounding.
-  const rounded = { readout: dequantise(readout), basis: dequantise(basis), curves };
-  const surprises = surprisesOf(model, origins, planned, rounded);
-  const delay = findDelays(origins, surprises, ny, np, H, decays);
+  const tensors = {
+    readout: quantiseTensor(
+      stacked((one) => one.readout, q),
+      rows,
+      q,
+      'i16',
+    ),
+    basis: quantiseTensor(
+      stacked((one) => one.basis, H),
+      rows,
+      H,
+      'i8',
+    ),
+  };
+  return { curves, readout: dequantise(tensors.readout), basis: dequantise(tensors.basis), tensors };
+}
+
+/** Delays, unless given, and gains, behind the expectation as it stands after rounding. */
+function answerTo(
+  { model, origins, folds, planned, decays }: Bench,
+  expectation: Rounded,
+  known: Int32Array | null,
+): { readonly response: Response; readonly surprises: Float64Array } {
+  const { signalCount: ny, horizon: H } = model;
+  const np = planned.length;
+  const surprises = surprisesOf(model, origins, planned, expectation);
+  const delay = known ?? findDelays(origins, surprises, ny, np, H, decays);
   const { gain, ratio } = learnGains(origins, folds, surprises, ny, np, H, decays, delay);
   const tensors: ResponseTensors = {
     inputs: [...planned],
@@ -174,11 +205,10 @@ function attempt(
     delay: [...delay],
     gain: quantiseTensor(gain, ny, np * (decays.length + 2), 'i16'),
     looks: [...origins.looks],
-    readout,
-    basis,
+    ...expectation.tensors,
     surprise: meanSizes(surprises, np, H),
   };
-  return { tensors, ratio, model: computable(tensors) };
+  return { surprises, response: { tensors, ratio, model: computable(tensors) } };
 }
 
 /** Ready to compute with, as the gateway will make it of the bundle. */

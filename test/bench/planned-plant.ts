@@ -4,10 +4,8 @@
  * y = K (1 − exp(−(t − θ)/τ)) for t > θ, from memory), under a wandering disturbance and read through noise. The input is
  * moved by hand at random moments, so that nothing but a plan tells of it ahead.
  */
-import { parseSite, type Site } from '../../protocol/index.ts';
-import type { FitInput } from '../../trainer/fit-options.ts';
-import { gaussians } from './gaussian.ts';
-import { recurrence } from './sample-bundle.ts';
+import { parseSite, type Site } from '@stillwell/protocol';
+import type { KnownPlant } from './known-plant.ts';
 
 export const GAIN = 2;
 export const LAG = 8;
@@ -59,10 +57,13 @@ export const plannedSite = (planTopic: string | null = 'plan/valve'): Site =>
   );
 
 /** A history; `valve` null: moved at random, otherwise its value at each tick. */
-export const plannedHistory = (ticks: number, seed: number, valve: ((t: number) => number) | null = null): FitInput => {
-  const next = recurrence(seed);
-  const uniform = (): number => next() / 2 ** 32;
-  const normal = gaussians(uniform);
+export const plannedHistory = (
+  ticks: number,
+  seed: number,
+  valve: ((t: number) => number) | null = null,
+): KnownPlant['input'] => {
+  const uniform = uniforms(seed);
+  const normal = (): number => Math.sqrt(-2 * Math.log(1 - uniform())) * Math.cos(2 * Math.PI * uniform());
   const u = new Float64Array(ticks);
   const y = new Float64Array(ticks);
   let level = 0;
@@ -92,5 +93,14 @@ export const plannedHistory = (ticks: number, seed: number, valve: ((t: number) 
       { step: STEP, offset: 0 },
       { step: 0.5, offset: 0 },
     ],
+  };
+};
+
+/** Integers by a linear recurrence (Numerical Recipes, "quick and dirty" generators), as numbers below one. */
+const uniforms = (seed: number): (() => number) => {
+  let word = seed >>> 0;
+  return () => {
+    word = (Math.imul(word, 1_664_525) + 1_013_904_223) >>> 0;
+    return word / 2 ** 32;
   };
 };
