@@ -18,8 +18,8 @@ export interface Split {
 }
 
 /** Ticks that each part must hold: whole horizons, and some origins beyond them. */
-const LEAST_LEARN = { horizons: 6, ticks: 64 } as const;
-const LEAST_OTHER = { horizons: 2, ticks: 16 } as const;
+const LEAST_LEARN = { horizons: 6, ticks: 36 } as const;
+const LEAST_OTHER = { horizons: 2, ticks: 12 } as const;
 
 /** What the checks look at. */
 export interface Asked {

@@ -26,7 +26,7 @@ signals:
 );
 const lattice = { step: 0.1, offset: 0 };
 
-/** Two signals that follow the day and each other; from `change` on, the load swings against the supply. */
+/** Two signals that follow the day and each other; from `change` on, the load swings three times a day. */
 function plant(ticks: number, change: number): Float64Array[] {
   const random = seededNumbers(31);
   const [supply, load] = [new Float64Array(ticks), new Float64Array(ticks)];
@@ -34,9 +34,9 @@ function plant(ticks: number, change: number): Float64Array[] {
   for (let n = 0; n < ticks; n++) {
     wander = 0.9 * wander + (random() + random() - 1);
     const day = Math.sin((2 * Math.PI * n) / 24);
-    const sign = n < change ? 1 : -1;
+    const swing = n < change ? day : Math.sin((6 * Math.PI * n) / 24);
     supply[n] = Math.round((60 + 5 * day + wander) * 10) / 10;
-    load[n] = Math.round((200 + sign * 20 * day + 3 * sign * wander + random()) * 10) / 10;
+    load[n] = Math.round((200 + 20 * swing + 3 * wander + random()) * 10) / 10;
   }
   return [supply, load];
 }
