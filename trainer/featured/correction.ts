@@ -6,8 +6,8 @@ import { dequantise, quantiseTensor, type Tensor } from '@stillwell/protocol';
 import { cholesky, solveCholesky } from '../linalg/cholesky.ts';
 import { symmetricEigen } from '../linalg/eigen.ts';
 import { multiply, multiplyTransposed, transpose } from '../linalg/products.ts';
+import { replacements, roundRows } from '../quantise/feedback.ts';
 import { type FeatureMap, type FeatureMoments, featureError } from './feature-moments.ts';
-import { planRounding, type RoundingPlan, roundRows } from './rounding.ts';
 
 /** Variance of a cosine at a random phase: penalties are relative to it. */
 const FEATURE_VARIANCE = 0.5;
@@ -33,16 +33,17 @@ export function ridgeFeatures(moments: FeatureMoments, penalty: number): Feature
 }
 
 /**
- * What rounding needs of the moments.
+ * What rounding needs of the moments: how each regressor is replaced by those after it.
  *
- * shapes  as RoundingPlan
+ * shapes  result (D × D)
  * units   standardised
  * throws  TrainError 'fit' if the moments are not positive definite
- * source  rounding.ts
+ * source  trainer/quantise/feedback.ts
  * cost    O(D³)
  */
-export function roundingOf(moments: FeatureMoments): RoundingPlan {
-  return planRounding(aboutMeans(moments).gram, moments.sum.length);
+export function roundingOf(moments: FeatureMoments): Float64Array {
+  const covariance = aboutMeans(moments).gram.map((value) => value / moments.origins);
+  return replacements(covariance, moments.sum.length);
 }
 
 function aboutMeans({ origins, sum, gram, targetSum, cross }: FeatureMoments): {
@@ -92,7 +93,7 @@ export function reduceMap(
   moments: FeatureMoments,
   map: FeatureMap,
   most: number,
-  rounding: RoundingPlan | null,
+  rounding: Float64Array | null,
 ): Correction {
   const D = moments.sum.length;
   const m = map.offset.length;
@@ -108,7 +109,7 @@ export function reduceMap(
     for (let k = 0; k < count; k++) chosen[c * count + k] = vectors[c * m + k] / Math.sqrt(values[k] || 1);
   }
   const exact = transpose(multiply(map.weights, chosen, D, m, count), D, count);
-  const tensor = rounding === null ? null : roundRows(exact, count, rounding);
+  const tensor = rounding === null ? null : roundRows(exact, count, D, () => rounding);
   const projection = tensor === null ? exact : dequantise(tensor);
   const shift = negativeMeans(moments, projection, count);
   const shiftTensor = rounding !== null ? quantiseTensor(shift, count, 1, 'f32') : null;

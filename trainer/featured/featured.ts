@@ -10,7 +10,6 @@ import { chooseFeatures, type FeatureChoice } from './choose-features.ts';
 import { type Correction, correctionError, reduceMap, ridgeFeatures, roundingOf } from './correction.ts';
 import { type FeatureMap, type FeatureMoments, gatherFeatures } from './feature-moments.ts';
 import { gatherOrigins, type Origins, onModelCurves } from './origins.ts';
-import type { RoundingPlan } from './rounding.ts';
 
 /** Share of the bytes kept for the correction. */
 const CORRECTION_SHARE = 0.5;
@@ -92,7 +91,7 @@ function leastRounded(
   moments: FeatureMoments,
   maps: readonly FeatureMap[],
   most: number,
-  rounding: RoundingPlan,
+  rounding: Float64Array,
 ): Correction {
   const tried = maps.map((map) => reduceMap(moments, map, most, rounding));
   const errors = tried.map((correction) => correctionError(moments, correction));
