@@ -10,11 +10,11 @@ it('averages a rival over every signal, one that both forecast without error inc
     units: ['m', 'm'],
     horizon: 1,
     tickMs: 60_000,
-    origins: 10,
+    origins: 20,
     fromMs: 0,
-    toMs: 600_000,
+    toMs: 1_200_000,
     rivals: ['persistence'],
-    count: two(10, 10),
+    count: two(20, 20),
     mse: two(2, 0),
     mae: two(1, 0),
     bias: two(0, 0),
@@ -29,11 +29,18 @@ it('averages a rival over every signal, one that both forecast without error inc
     residuals: [],
     paths: [],
     readings: [],
-    originMs: Float64Array.from({ length: 10 }, (_, k) => k * 60_000),
-    pathLoss: [2, 0].map((loss) => new Float64Array(10).fill(loss)),
-    rivalPathLoss: [4, 0].map((loss) => new Float64Array(10).fill(loss)),
+    originMs: Float64Array.from({ length: 20 }, (_, k) => k * 60_000),
+    pathLoss: [2, 0].map((loss) => Float64Array.from({ length: 20 }, (_, k) => loss * (1 + 0.1 * Math.sin(k)))),
+    rivalPathLoss: [4, 0].map((loss) => new Float64Array(20).fill(loss)),
     reliability: null,
   };
+  const json = hindcastJson(cast) as Record<string, any>;
+  expect(json.signals[0].verdict).toMatchObject({ skill: 0.5, against: 'persistence', stretches: { length: 8 } });
+  expect(json.signals[0].verdict.test).toMatchObject({ origins: 20, variance: 'truncated' });
+  expect(json.signals[1].verdict).toMatchObject({ skill: 0, against: 'persistence', test: null });
+  // The sine is largest at 14 of 0 to 19.
+  expect(json.worst_spells.all_signals[0]).toMatchObject({ from: '1970-01-01T00:14:00.000Z', origins: 1 });
+  expect(json.crossings).toBeNull();
   // Standardised by scale 2: ours 2/4, theirs 4/4; averaged over two signals 0.25 and 0.5.
   const { average } = hindcastJson(cast) as { average: { mse_standardised: number; rivals: unknown } };
   expect(average.mse_standardised).toBe(0.25);

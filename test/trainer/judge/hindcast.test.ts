@@ -103,6 +103,21 @@ describe('hindcast', () => {
     });
   });
 
+  it('keeps the loss of every path, ours and a rival’s, by origin', () => {
+    for (const k of [0, 37, 80]) {
+      const path = slowPath(result.model, origins[k]!);
+      const ahead = Array.from({ length: H }, (_, h) => values[1]![origins[k]! + h + 1]!);
+      const known = ahead.flatMap((y, h) => (Number.isNaN(y) ? [] : [(path[H + h]! - y) ** 2]));
+      expect(cast.pathLoss[1]![k]).toBeCloseTo(mean(known), 12);
+      const last = carryForward(values[1]!, 0)[origins[k]!]!;
+      const rival = ahead.flatMap((y) => (Number.isNaN(y) ? [] : [(last - y) ** 2]));
+      expect(cast.rivalPathLoss[1]![k]).toBeCloseTo(mean(rival), 12);
+      expect(cast.originMs[k]).toBe((series.firstTick + origins[k]!) * series.tickMs);
+    }
+    expect(cast.reliability).toMatchObject({ isDeclared: false, limits: 8 });
+    expect(cast.reliability!.count).toBeGreaterThan(100);
+  });
+
   it('keeps residuals one tick after their forecast, and none where the reading is missing', () => {
     const at = 610 - from;
     expect(cast.residuals[0]![at]!).toBeCloseTo(values[0]![610]! - slowPath(result.model, 609)[0]!, 10);
