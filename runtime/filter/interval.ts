@@ -53,15 +53,17 @@ export interface Bounds {
   readonly scratch: Float64Array;
 }
 
-/** Steps scored one by one up to here; from there to twice as far every second, then every fourth, and so on. */
+/** Steps are scored one by one up to here … */
 const DENSE_STEPS = 16;
+/** … and from here on four in each doubling; between, eight. Measured: no coverage is lost by it. */
+const WIDE_STEPS = 32;
 /** The tracker's step at h is at most longRate / (h + this). */
 const RATE_AHEAD = 5;
 
 /**
  * Bounds as calibrated, nothing tracked yet.
  *
- * shapes  issued takes 8 ny bytes times the sum of the scored steps: 43 KB at 8 signals and 60 steps, 69 KB at 96, 219 KB at
+ * shapes  issued takes 8 ny bytes times the sum of the scored steps: 35 KB at 8 signals and 60 steps, 46 KB at 96, 133 KB at
  *         288; for bundles without a long rate 2 ny H(H + 1) bytes
  */
 export function createBounds(model: CommonModel): Bounds {
@@ -102,13 +104,14 @@ export function createBounds(model: CommonModel): Bounds {
   };
 }
 
-/** 1 … 16, then 18 … 32, 36 … 64, 72 … 128 and so on, and H: errors of neighbouring steps are alike. */
+/** 1 … 16, then 18 … 32, then four in each doubling: 40 … 64, 80 … 128 and so on, and H: neighbouring steps err alike. */
 function scoredSteps(horizon: number): number[] {
   const steps: number[] = [];
   let gap = 1;
   for (let h = 1; h < horizon; h += gap) {
     steps.push(h);
-    if (h === DENSE_STEPS * gap) gap *= 2;
+    const isDoubling = (h & (h - 1)) === 0;
+    if (isDoubling && h >= DENSE_STEPS) gap = h < WIDE_STEPS ? h / 8 : h / 4;
   }
   return [...steps, horizon];
 }
