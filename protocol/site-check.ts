@@ -83,10 +83,26 @@ const horizonFaults = (site: Site): Fault[] => {
   return [fault(['horizon'], `expected 1 to ${MAX_HORIZON} whole ticks of ${formatDuration(site.tickMs)}, got ${got}`)];
 };
 
-/** Lists what does not fit together in a site: horizon and tick, repeated names and readings, order of limits. */
+/** A plan read as a reading, or the other way round, would be refused message by message; better once, here. */
+const planFaults = (site: Site): readonly Fault[] => {
+  const plans = new Map<string, number>();
+  return site.inputs.flatMap(({ name, topic, planTopic }, i): Fault[] => {
+    if (planTopic === null) return [];
+    const path = ['inputs', i, 'plan_topic'];
+    const same = plans.get(planTopic);
+    plans.set(planTopic, same ?? i);
+    if (planTopic === topic)
+      return [fault(path, `expected another topic than that of the readings of "${name}", got the same`)];
+    if (same === undefined) return [];
+    return [fault(path, `expected a topic of its own, got that of inputs[${same}] ("${site.inputs[same]!.name}")`)];
+  });
+};
+
+/** Lists what does not fit together in a site: horizon and tick, repeated names and readings, plan topics, order of
+ * limits. */
 export const crossFaults = (site: Site): readonly Fault[] => {
   const entries = entriesOf(site);
-  const faults = [...horizonFaults(site), ...repeatFaults(entries)];
+  const faults = [...horizonFaults(site), ...repeatFaults(entries), ...planFaults(site)];
   for (const { signal, path } of entries) faults.push(...limitFaults(signal, path));
   if (entries.length > MAX_CHANNELS) {
     faults.push(

@@ -213,6 +213,20 @@ describe('what is no site file', () => {
     expect(refusal.message.split('\n')).toHaveLength(1);
   });
 
+  test.each([
+    [
+      'inputs: [{name: pump, topic: a/pump, plan_topic: a/pump}]',
+      'inputs[0].plan_topic: expected another topic than that of the readings of "pump", got the same',
+    ],
+    [
+      'inputs: [{name: pump, plan_topic: plans}, {name: rain, plan_topic: plans}]',
+      'inputs[1].plan_topic: expected a topic of its own, got that of inputs[0] ("pump")',
+    ],
+  ])('plan topics that cannot be told apart: %s', (inputs, message) => {
+    const text = `site: a\ntime_zone: UTC\ntick: 1min\nhorizon: 2\nsignals: [{name: t}]\n${inputs}\n`;
+    expect(refusalOf(() => parseSite(text, 'site.yaml')).message).toContain(message);
+  });
+
   test('aliases that multiply are refused quickly', () => {
     const lines = Array.from(
       { length: 12 },
