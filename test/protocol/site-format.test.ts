@@ -83,7 +83,7 @@ const site: fc.Arbitrary<Site> = record({
   }),
   exclude: fc.array(exclusion, { maxLength: 3 }),
 }).map((one) => {
-  // Names and readings must be distinct: number the names, keep a topic on the first channel alone.
+  // Names, readings and plans must be distinct: number names and plans, keep a topic on the first channel alone.
   const own = <T extends Signal>(channel: T, i: number): T => ({
     ...channel,
     name: toName(`${Array.from(channel.name).slice(0, 5).join('')}_${i}`),
@@ -94,7 +94,10 @@ const site: fc.Arbitrary<Site> = record({
   return {
     ...one,
     signals,
-    inputs: one.inputs.map((channel, i) => own(channel, i + one.signals.length)),
+    inputs: one.inputs.map((channel, i) => ({
+      ...own(channel, i + one.signals.length),
+      planTopic: channel.planTopic === null ? null : `${channel.planTopic}${i}`,
+    })),
     exclude: one.exclude.map((entry) => ({
       ...entry,
       signals: entry.signals === null ? null : [name],
