@@ -7,8 +7,9 @@
  * "Outside" is held against the bounds that were issued with the forecast, h ticks ago, not against those of now: only then
  * do misses and hits add up to the move of q, and so their share comes to α, whatever the errors and however alike
  * neighbouring ones are. rate(h) falls with h, since the answer comes h ticks late and a run of misses at a long step tells
- * of one event. `size` is the calibrated radius q0, and more where that proves far too small:
- * max(q0, min(max(|e|, q) / 16, q)), so that a signal that stood still when it was calibrated is caught up with.
+ * of one event. `size` is the calibrated radius q0; less where q has fallen below it, min(q0, max(q, q0 / 16)), or a plant
+ * that has calmed down would be swung about by steps of its old size; more where q0 proves far too small, at least
+ * min(max(|e|, q) / 16, q), so that a signal that stood still when it was calibrated is caught up with.
  * While readings are missing, another factor ("stretch") is moved in the same way by the forecasts made in gaps.
  * Steps between the scored ones take the ratio q / q0 of their neighbours, by straight lines.
  *
@@ -89,7 +90,9 @@ function score(model: CommonModel, bounds: Bounds, state: FilterState, signal: n
     return;
   }
   const q = bounds.radius[cell];
-  const size = Math.max(bounds.calibrated[cell], Math.min(Math.max(error, q) / WRONG_SIZE, q));
+  const start = bounds.calibrated[cell];
+  const usual = Math.min(start, Math.max(q, start / WRONG_SIZE));
+  const size = Math.max(usual, Math.min(Math.max(error, q) / WRONG_SIZE, q));
   bounds.radius[cell] = Math.min(bounds.ceiling[signal], Math.max(bounds.floor[cell], q + move * size));
 }
 

@@ -107,7 +107,8 @@ describe('errors alike from tick to tick', () => {
   });
 
   test('hits and misses add up to the move of the radius', () => {
-    const model = persistence({ horizon: 4 }, radius);
+    // Calibrated far too small, so that every step is of the calibrated size.
+    const model = persistence({ horizon: 4 }, (h) => 0.3 * Math.sqrt(h));
     const { inside, counted, bounds } = run(model, y, 0);
     for (let h = 1; h <= 4; h++) {
       const misses = (1 - inside[h - 1]!) * counted[h - 1]!;
@@ -131,6 +132,16 @@ describe('when the size of the errors changes', () => {
     const at = (from: number, to: number): number => mean(run(model, y.subarray(0, to), from).inside);
     expect(at(change, change + 6 * H)).toBeLessThan(0.85);
     expect(at(change + 12 * H, 12_000)).toBeGreaterThan(0.88);
+  });
+
+  test('a tenth as large: bounds follow, and are not swung about by steps of their old size', () => {
+    const y = wander(12_000, 6, (n) => (n < change ? 1 : 0.1));
+    const model = persistence({ horizon: H }, (h) => 1.8 * Math.sqrt(h));
+    const { inside } = run(model, y, 8000);
+    expect(Math.abs(mean(inside) - 0.9)).toBeLessThan(0.02);
+    const before = run(model, y.subarray(0, change), 0).bounds.radius;
+    const radii = [9000, 10_000, 11_000, 12_000].map((to) => run(model, y.subarray(0, to), to).bounds.radius[H - 1]!);
+    for (const radius of radii) expect(radius / before[H - 1]!).toBeLessThan(0.25);
   });
 
   test('calibrated a thousand times too small: caught up with', () => {
