@@ -36,8 +36,8 @@ const MOST_CURVES = 8;
 const CURVE_BYTES = 3072;
 /** States of any kind at most. */
 const MOST_STATES = 128;
-/** An input that departs from what is expected at fewer origins than this teaches nothing. */
-const LEAST_MOVING = 20;
+/** An input that changed less often teaches nothing of what its changes bring. */
+const LEAST_MOVES = 10;
 
 /**
  * Poles that double from a tick and a half up to twice the horizon.
@@ -90,15 +90,16 @@ function curvesFor(planned: number, horizon: number): number {
  * cost    one replay, and a few regressions on some thousand origins
  */
 export function learnResponse(model: Model, series: Series, span: TickSpan, planned: readonly number[]): ResponseFound {
-  const moving = planned.filter((u) => moves(model, series, span, u));
+  const moves = planned.map((u) => moveCount(series.values[model.signalCount + u], span));
+  const moving = planned.filter((_, k) => moves[k] >= LEAST_MOVES);
   const names = (list: readonly number[]): string => list.map((u) => series.names[model.signalCount + u]).join(', ');
-  const still = planned.filter((u) => !moving.includes(u));
-  const warnings =
-    still.length === 0
-      ? []
-      : [
-          `${names(still)}: never moved while learning, so what a plan of it would bring is not known; plans are passed over.`,
-        ];
+  const warnings = planned.flatMap((u, k) => {
+    if (moves[k] >= LEAST_MOVES) return [];
+    const often = moves[k] === 0 ? 'never moved' : `moved ${moves[k] === 1 ? 'once' : `only ${moves[k]} times`}`;
+    return [
+      `${names([u])}: ${often} while learning, so what a plan of it would bring is not known; plans are passed over.`,
+    ];
+  });
   if (moving.length === 0) return { response: null, warnings };
   const decays = responseDecays(model.horizon);
   const origins = gatherPlanOrigins(model, series, span, moving, decays.length + 2);
@@ -112,13 +113,11 @@ export function learnResponse(model: Model, series: Series, span: TickSpan, plan
   return { response: null, warnings: [...warnings, text] };
 }
 
-function moves(model: Model, series: Series, span: TickSpan, u: number): boolean {
-  const values = series.values[model.signalCount + u];
-  let moving = 0;
-  for (let t = span.fromTick + 1; t < span.toTick && moving < LEAST_MOVING; t++) {
-    if (Math.abs(values[t] - values[t - 1]) > 0) moving++;
-  }
-  return moving >= LEAST_MOVING;
+/** Times an input changed from one tick to the next. */
+function moveCount(values: Float64Array, span: TickSpan): number {
+  let moves = 0;
+  for (let t = span.fromTick + 1; t < span.toTick; t++) if (Math.abs(values[t] - values[t - 1]) > 0) moves++;
+  return moves;
 }
 
 /** What every attempt learns from. */

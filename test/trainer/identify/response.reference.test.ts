@@ -86,6 +86,12 @@ describe('a plan that cannot help', () => {
     expect(still.model.response).toBeUndefined();
     expect(still.warnings.join('\n')).toMatch(/valve: never moved while learning/);
     expect(still.hindcast.mse.every(Number.isFinite)).toBe(true);
+    const once = await fitHistory(
+      plannedHistory(3000, 12, (t) => (t < 900 ? 1 : 2)),
+      options,
+    );
+    expect(once.model.response).toBeUndefined();
+    expect(once.warnings.join('\n')).toMatch(/valve: moved once while learning/);
   });
 
   test('of an input without effect is passed over with a plain warning', async () => {
