@@ -7,6 +7,8 @@ import type { Model } from '@stillwell/runtime/filter';
 import { TrainError } from '../errors.ts';
 import { tryDriven } from '../featured/driven.ts';
 import { tryFeatured } from '../featured/featured.ts';
+import { plannerOf } from '../judge/plan-trial.ts';
+import { learnPlans, plannedInputs } from '../plans.ts';
 import { signalErrors } from '../quantise/audit.ts';
 import { trySwitched } from '../switched/switched.ts';
 import type { Attempt, Candidate, TryKind } from './candidate.ts';
@@ -76,10 +78,23 @@ export function chooseKind(attempt: Attempt): KindChoice {
   return { candidate: candidates[smallest], tried };
 }
 
-function calibrationErrors({ split, series, prepared }: Attempt, { rounded }: Candidate): Float64Array {
+/**
+ * Errors without a plan; where inputs have plans, the geometric mean of those and of the errors under a true plan, since the
+ * model will be asked for both.
+ */
+function calibrationErrors(attempt: Attempt, candidate: Candidate): Float64Array {
+  const { split, series, prepared, site } = attempt;
   const fromTick = split.calibrate.fromTick - series.firstTick;
   const toTick = split.calibrate.toTick - series.firstTick;
-  return signalErrors(rounded, prepared.calm, { fromTick, toTick });
+  const { rounded } = candidate;
+  const without = signalErrors(rounded, prepared.calm, { fromTick, toTick });
+  const planned = plannedInputs(site);
+  if (planned.length === 0) return without;
+  const { response } = learnPlans(candidate, prepared, prepared.learnTicks, planned);
+  const model = response === null ? rounded : { ...rounded, response: response.model };
+  const planner = plannerOf('perfect', model, prepared.calm, { fromTick, toTick }, planned);
+  const under = signalErrors(model, prepared.calm, { fromTick, toTick }, prepared.calm, planner);
+  return without.map((error, i) => Math.sqrt(error * under[i]));
 }
 
 /** Geometric mean of ours over theirs, over the signals where both say something. */

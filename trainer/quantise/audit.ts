@@ -6,7 +6,8 @@
 import { createBounds, createState, forecastPath, intervalOf, type Model, update } from '@stillwell/runtime/filter';
 import { TrainError } from '../errors.ts';
 import type { Series } from '../history/series.ts';
-import { replayPaths } from '../judge/replay.ts';
+import type { Planner } from '../judge/plan-trial.ts';
+import { type PathMoment, replayPaths } from '../judge/replay.ts';
 import { meanOf, Scores } from '../judge/scores.ts';
 import type { TickSpan } from '../span.ts';
 
@@ -32,7 +33,8 @@ export function replayError(model: Model, series: Series, span: TickSpan): numbe
 }
 
 /**
- * The same by signal; `seen` is what the filter sees where that is not the series it is scored against.
+ * The same by signal; `seen` is what the filter sees where that is not the series it is scored against, `planner` what it is
+ * told of the inputs' future.
  *
  * shapes  span of indices into the series; seen like the series; result (ny), NaN where nothing was read
  * units   standardised²
@@ -40,16 +42,28 @@ export function replayError(model: Model, series: Series, span: TickSpan): numbe
  * source  none
  * cost    one replay
  */
-export function signalErrors(model: Model, series: Series, span: TickSpan, seen: Series = series): Float64Array {
+export function signalErrors(
+  model: Model,
+  series: Series,
+  span: TickSpan,
+  seen: Series = series,
+  planner: Planner | null = null,
+): Float64Array {
   const { signalCount: ny, horizon: H } = model;
-  const mse = replayScores(model, series, span, seen).mse();
+  const mse = replayScores(model, series, span, seen, planner).mse();
   return Float64Array.from({ length: ny }, (_, i) => meanOf(mse, i * H, (i + 1) * H));
 }
 
-function replayScores(model: Model, series: Series, span: TickSpan, seen: Series): Scores {
+function replayScores(
+  model: Model,
+  series: Series,
+  span: TickSpan,
+  seen: Series,
+  planner: Planner | null = null,
+): Scores {
   const { signalCount: ny, horizon: H } = model;
   const scores = new Scores(ny * H);
-  replayPaths(model, seen, { fromTick: span.fromTick - 1, toTick: span.toTick - H }, ({ at, median }) => {
+  const score = ({ at, median }: PathMoment): void => {
     if (series.excluded?.isExcluded[at] === 1) return;
     for (let i = 0; i < ny; i++) {
       for (let h = 1; h <= H; h++) {
@@ -59,7 +73,8 @@ function replayScores(model: Model, series: Series, span: TickSpan, seen: Series
         scores.add(i * H + h - 1, (median[i * H + h - 1] - clipped) / model.scale[i]);
       }
     }
-  });
+  };
+  replayPaths(model, seen, { fromTick: span.fromTick - 1, toTick: span.toTick - H }, score, planner);
   return scores;
 }
 
