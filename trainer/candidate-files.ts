@@ -3,6 +3,7 @@ import { join } from 'node:path';
 import { ADVISORY, type Site } from '@stillwell/protocol';
 import type { Survey } from './history/survey.ts';
 import { hindcastJson } from './judge/hindcast-json.ts';
+import { planWorthJson } from './judge/plan-worth.ts';
 import { writeOutputs } from './output-file.ts';
 import type { FitResult } from './pipeline.ts';
 
@@ -17,7 +18,7 @@ export const CANDIDATE_FILES = 'candidate.swc, report.html, hindcast.json, surve
 export async function writeCandidate(folder: string, site: Site, survey: Survey, result: FitResult): Promise<void> {
   // Plots take half a second to load, which commands without a report need not wait for.
   const { fitReport } = await import('./report/page.ts');
-  const hindcast = `${JSON.stringify(hindcastJson(result.hindcast), null, 2)}\n`;
+  const hindcast = `${JSON.stringify({ ...hindcastJson(result.hindcast), ...planWorthJson(result.planWorth) }, null, 2)}\n`;
   const report = fitReport({ site, survey, result });
   writeOutputs([
     { path: join(folder, 'survey.json'), bytes: `${JSON.stringify(survey, null, 2)}\n` },
@@ -37,6 +38,7 @@ export function candidateFacts(folder: string, result: FitResult): Record<string
     verdict: result.verdicts.sentence,
     signals: result.verdicts.signals,
     audit: result.audit,
+    ...planWorthJson(result.planWorth),
     chosen: result.chosen,
     warnings: result.warnings,
     timings_ms: result.timings,

@@ -53,12 +53,15 @@ const survive = (model: Model, ticks: number, next: (n: number, c: number) => nu
   const [median, lower, upper] = [new Float64Array(size), new Float64Array(size), new Float64Array(size)];
   const predicted = new Float64Array(model.channelCount);
   const readings = new Float64Array(model.channelCount);
+  const plan = new Float64Array((model.channelCount - model.signalCount) * model.horizon);
   const watched = [state.value, ...buffersOf(state.core), median, lower, upper, predicted, bounds.radius];
   for (let n = 0; n < ticks; n++) {
     for (let c = 0; c < readings.length; c++) readings[c] = next(n, c);
     update(model, state, n, readings);
     predictNext(model, state, predicted);
-    forecastPath(model, state, median);
+    // What was hostile as readings is hostile as a plan; models without a response pass it over.
+    for (let k = 0; k < plan.length; k++) plan[k] = HOSTILE[(n * 7 + k * k) % HOSTILE.length];
+    forecastPath(model, state, median, model.response === undefined ? null : plan);
     trackBounds(model, bounds, state, median);
     intervalOf(model, bounds, state, median, lower, upper);
     if (strayed(watched) !== 0) throw new Error(`not finite at tick ${n}, readings ${readings}`);
@@ -85,6 +88,25 @@ describe('finite, always', () => {
     readout: model.readout.map((w) => w * 1e50),
     horizonBasis: model.horizonBasis.map((w) => w * 1e50),
   };
+  const planned = syntheticModel({
+    seed: 3,
+    inputs: ['valve', 'set'],
+    horizon: 6,
+    order: 4,
+    lags: [1, 7],
+    response: true,
+  });
+  const response = planned.response!;
+  const wildPlanned: LinearModel = {
+    ...planned,
+    bottleneck: planned.bottleneck.map((w) => w * 1e50),
+    response: {
+      ...response,
+      gain: response.gain.map((w) => w * 1e50),
+      readout: response.readout.map((w) => w * 1e50),
+      basis: response.basis.map((w) => w * 1e50),
+    },
+  };
   const dense = syntheticDense({ seed: 3, inputs: ['valve', 'set'], horizon: 6, basis: 3, lags: [1, 7], level: true });
   const wildDense: Model = {
     ...dense,
@@ -98,6 +120,8 @@ describe('finite, always', () => {
   test.each([
     ['tame', model],
     ['wild', wild],
+    ['planned, tame', planned],
+    ['planned, wild', wildPlanned],
     ['dense, tame', dense],
     ['dense, wild', wildDense],
   ] as const)('%s weights, half a million hostile readings', (_, at) => {
