@@ -264,7 +264,7 @@ function surpriseOf(
 }
 
 /** Fills buffers.filtered with filter b of the surprise: direct, poles in order, running sum. */
-export function filterSurprise(response: ResponseModel, buffers: ResponseBuffers, b: number): void {
+function filterSurprise(response: ResponseModel, buffers: ResponseBuffers, b: number): void {
   const { surprise, filtered } = buffers;
   const H = surprise.length;
   const nb = response.decays.length;

@@ -43,7 +43,7 @@ export function planFault(
 }
 
 /** Whether a plan of the input can change forecasts of the model. */
-export function reaches(model: Model, input: number): boolean {
+function reaches(model: Model, input: number): boolean {
   return model.kind === 'driven' || (model.response?.inputs.includes(input) ?? false);
 }
 

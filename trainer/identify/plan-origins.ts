@@ -115,7 +115,7 @@ export function gatherPlanOrigins(
  * source  own choice
  * cost    trivial
  */
-export function spread(horizon: number, count: number): number[] {
+function spread(horizon: number, count: number): number[] {
   const steps = new Set<number>([1, horizon]);
   for (let k = 1; k < count - 1; k++) steps.add(Math.round(horizon ** (k / (count - 1))));
   return [...steps].sort((a, b) => a - b);

@@ -34,7 +34,7 @@ const MOST_ORIGINS = 3000;
  * source  none
  * cost    trivial
  */
-export function reachedInputs(model: Model, wanted: readonly number[]): readonly number[] {
+function reachedInputs(model: Model, wanted: readonly number[]): readonly number[] {
   if (model.kind === 'driven') return wanted;
   const inputs = [...(model.response?.inputs ?? [])];
   return wanted.filter((u) => inputs.includes(u));
