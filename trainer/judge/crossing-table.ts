@@ -6,14 +6,12 @@ import { CROSSING_KNOTS } from '@stillwell/protocol';
 import type { Model } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
 import type { TickSpan } from '../span.ts';
-import { type AskedLimit, type CrossingPair, Crossings, usualLimits } from './crossings.ts';
+import { type AskedLimit, askEvery, type CrossingPair, Crossings, usualLimits } from './crossings.ts';
 import { crossingTable } from './reliability.ts';
 import { replay } from './replay.ts';
 
 /** Shares of the one-step error that are tried; the first stands where nothing is crossed that could tell. */
 const FRESH = [0.5, 1, 0.25] as const;
-/** Origins asked at, about. */
-const MOST_ORIGINS = 600;
 /** Crossings without which nothing is learned. */
 const LEAST_CROSSINGS = 30;
 /** Fall of the Brier score, on halves that the table was not learned from, that is worth a table. */
@@ -45,7 +43,7 @@ export function learnCrossing(
     const ask = (limits: readonly AskedLimit[]): Crossings => new Crossings(own, limits, readings, span.toTick);
     return { crossingFresh, usual: ask(usual), declared: ask(declared) };
   });
-  const every = Math.max(1, Math.floor((span.toTick - span.fromTick - H) / MOST_ORIGINS));
+  const every = askEvery(span.toTick - span.fromTick - H, usual.length + declared.length);
   replay(model, series, { fromTick: span.fromTick, toTick: span.toTick }, (moment) => {
     if ((moment.at - span.fromTick) % every !== 0 || series.excluded?.isExcluded[moment.at] === 1) return;
     for (const one of asked) {

@@ -29,6 +29,15 @@ const LEAST_KNOWN = 0.9;
 /** Shares of the readings that limits are put at where the site declares none. */
 const LIMIT_SHARES = [0.05, 0.2, 0.8, 0.95] as const;
 
+/** Origins asked at, and questions asked in all, about, at most. */
+const MOST_ORIGINS = 800;
+const MOST_QUESTIONS = 40_000;
+
+/** Every how many-th origin is asked at, so that many signals or a long time take no longer than they tell. */
+export function askEvery(origins: number, limits: number): number {
+  return Math.max(1, Math.floor(origins / Math.min(MOST_ORIGINS, Math.ceil(MOST_QUESTIONS / Math.max(1, limits)))));
+}
+
 /** The limits a site file declares, by signal. */
 export function declaredLimits(limits: readonly Limits[]): AskedLimit[] {
   return limits.flatMap(({ highHigh, high, low, lowLow }, signal) => [

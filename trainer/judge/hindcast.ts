@@ -9,7 +9,7 @@ import type { Model } from '@stillwell/runtime/filter';
 import { withoutExcluded } from '../exclusions.ts';
 import type { Series } from '../history/series.ts';
 import type { TickSpan } from '../span.ts';
-import { type AskedLimit, Crossings, usualLimits } from './crossings.ts';
+import { type AskedLimit, askEvery, Crossings, usualLimits } from './crossings.ts';
 import { type PlanTrial, plannerOf } from './plan-trial.ts';
 import { type Reliability, reliabilityOf } from './reliability.ts';
 import { replay } from './replay.ts';
@@ -80,9 +80,6 @@ export interface HindcastSpan extends TickSpan {
   readonly plan?: { readonly trial: PlanTrial; readonly inputs: readonly number[] };
 }
 
-/** Origins at which crossing probabilities are asked for, about. */
-const ASKED_ORIGINS = 800;
-
 /**
  * Replays a model over a span and scores it beside the rivals.
  *
@@ -119,7 +116,7 @@ export function hindcast(model: Model, series: Series, span: HindcastSpan, units
   const { limits = [] } = span;
   const asked = limits.length > 0 || learn === null ? limits : usualLimits(series, learn);
   const crossings = new Crossings(model, asked, readings, to);
-  const every = Math.max(1, Math.floor((to - from - H + 1) / ASKED_ORIGINS));
+  const every = askEvery(to - from - H + 1, asked.length);
   replay(
     model,
     series,
