@@ -27,8 +27,10 @@ const BLOCK_HORIZONS = 2;
  * cost    O(origins)
  */
 export function skillByBlock(hindcast: Hindcast, signal: number, rival: number): Block[] {
-  const { origins, originMs, horizon, signals } = hindcast;
-  const count = Math.max(1, Math.min(MOST_BLOCKS, Math.floor(origins / (BLOCK_HORIZONS * horizon))));
+  const { originMs, lossEvery, horizon, signals } = hindcast;
+  const origins = originMs.length;
+  const horizons = (origins * lossEvery) / horizon;
+  const count = Math.max(1, Math.min(MOST_BLOCKS, Math.floor(horizons / BLOCK_HORIZONS)));
   const ours = hindcast.pathLoss[signal];
   const theirs = hindcast.rivalPathLoss[rival * signals.length + signal];
   return Array.from({ length: origins > 0 ? count : 0 }, (_, k) => {

@@ -122,7 +122,11 @@ function judgeSignal(hindcast: Hindcast, i: number, horizons: readonly number[])
     test:
       rival === -1
         ? null
-        : compareLosses(hindcast.pathLoss[i], hindcast.rivalPathLoss[rival * hindcast.signals.length + i], H),
+        : compareLosses(
+            hindcast.pathLoss[i],
+            hindcast.rivalPathLoss[rival * hindcast.signals.length + i],
+            Math.ceil(H / hindcast.lossEvery),
+          ),
     blocks: rival === -1 ? [] : skillByBlock(hindcast, i, rival),
   };
   const isPerfect = rival !== -1 && meanOf(hindcast.rivalMse, rival * cells + i * H, rival * cells + (i + 1) * H) === 0;

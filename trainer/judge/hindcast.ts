@@ -50,11 +50,13 @@ export interface Hindcast {
   readonly paths: readonly HindcastPath[];
   /** (ny) of (ticks): the readings of the held-out part, first at fromMs. */
   readonly readings: readonly Float64Array[];
-  /** (origins) label of each origin. */
+  /** Every how many-th origin's losses are kept: 1, unless very many signals over a very long time would fill the memory. */
+  readonly lossEvery: number;
+  /** (kept) label of each origin whose losses are kept. */
   readonly originMs: Float64Array;
-  /** (ny) of (origins): mean squared error of the whole path from that origin, unit²; NaN where no reading came. */
+  /** (ny) of (kept): mean squared error of the whole path from that origin, unit²; NaN where no reading came. */
   readonly pathLoss: readonly Float64Array[];
-  /** (rivals · ny) of (origins), row r·ny + i: the same of a rival. */
+  /** (rivals · ny) of (kept), row r·ny + i: the same of a rival. */
   readonly rivalPathLoss: readonly Float64Array[];
   /** Whether crossing probabilities came true as often as they said; null where there was no limit to ask about. */
   readonly reliability: Reliability | null;

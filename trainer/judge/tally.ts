@@ -11,6 +11,8 @@ import { Scores } from './scores.ts';
 
 /** Paths kept for plots: about this many, evenly spread. */
 const KEPT_PATHS = 120;
+/** Losses kept in all, about: a tenth of a gigabyte. */
+const MOST_LOSSES = 1.5e7;
 
 /** Largest divisor of the horizon up to `wanted`, so that kept paths can be laid end to end without a hole. */
 function strideOfPaths(horizon: number, wanted: number): number {
@@ -36,8 +38,10 @@ export class Tally {
   readonly #path: Float64Array;
   readonly #every: number;
   readonly #paths: HindcastPath[] = [];
+  #origins = 0;
+  readonly #lossEvery: number;
   readonly #originMs: number[] = [];
-  /** (ny) and (rivals · ny) of (origins so far). */
+  /** (ny) and (rivals · ny) of (origins kept so far). */
   readonly #losses: readonly number[][];
   readonly #rivalLosses: readonly number[][];
 
@@ -61,6 +65,7 @@ export class Tally {
     this.#residuals = readings.map(() => new Float64Array(to - from).fill(Number.NaN));
     this.#next = new Float64Array(ny).fill(Number.NaN);
     this.#path = new Float64Array(horizon);
+    this.#lossEvery = Math.max(1, Math.ceil(((to - from) * ny * (rivals.length + 1)) / MOST_LOSSES));
     this.#losses = readings.map(() => []);
     this.#rivalLosses = rivals.flatMap(() => readings.map(() => []));
     this.#every = strideOfPaths(horizon, Math.floor((to - from - horizon + 1) / KEPT_PATHS));
@@ -73,8 +78,9 @@ export class Tally {
       this.#next[i] = median[i * this.#horizon];
     }
     if (at + this.#horizon >= this.#to || series.excluded?.isExcluded[at] === 1) return;
-    this.#originMs.push((series.firstTick + at) * series.tickMs);
-    for (let i = 0; i < this.#ny; i++) this.#score(i, moment);
+    const isKept = this.#origins++ % this.#lossEvery === 0;
+    if (isKept) this.#originMs.push((series.firstTick + at) * series.tickMs);
+    for (let i = 0; i < this.#ny; i++) this.#score(i, moment, isKept);
     if ((at - this.#from + 1) % this.#every === 0) {
       this.#paths.push({
         originMs: (series.firstTick + at) * series.tickMs,
@@ -85,7 +91,7 @@ export class Tally {
     }
   }
 
-  #score(signal: number, { at, median, lower, upper }: Moment): void {
+  #score(signal: number, { at, median, lower, upper }: Moment, isKept: boolean): void {
     const y = this.#readings[signal];
     const H = this.#horizon;
     for (let h = 1; h <= H; h++) {
@@ -93,10 +99,12 @@ export class Tally {
       const cell = signal * H + h - 1;
       if (!Number.isNaN(reading)) this.#coverage.add(cell, reading, lower[cell], upper[cell]);
     }
-    this.#losses[signal].push(this.#addPath(this.#own, signal, at, median, signal * H));
+    const own = this.#addPath(this.#own, signal, at, median, signal * H);
+    if (isKept) this.#losses[signal].push(own);
     this.#rivals.forEach((rival, r) => {
       rival.forecast(signal, at, this.#path);
-      this.#rivalLosses[r * this.#ny + signal].push(this.#addPath(this.#theirs[r], signal, at, this.#path, 0));
+      const loss = this.#addPath(this.#theirs[r], signal, at, this.#path, 0);
+      if (isKept) this.#rivalLosses[r * this.#ny + signal].push(loss);
     });
   }
 
@@ -127,7 +135,7 @@ export class Tally {
       units: units.slice(0, this.#ny),
       horizon: H,
       tickMs: series.tickMs,
-      origins: this.#originMs.length,
+      origins: this.#origins,
       fromMs: (series.firstTick + this.#from) * series.tickMs,
       toMs: (series.firstTick + this.#to) * series.tickMs,
       rivals: this.#rivals.map((rival) => rival.name),
@@ -146,6 +154,7 @@ export class Tally {
       residuals: this.#residuals,
       paths: this.#paths,
       readings: this.#readings.map((y) => y.slice(this.#from, this.#to)),
+      lossEvery: this.#lossEvery,
       originMs: Float64Array.from(this.#originMs),
       pathLoss: this.#losses.map((losses) => Float64Array.from(losses)),
       rivalPathLoss: this.#rivalLosses.map((losses) => Float64Array.from(losses)),

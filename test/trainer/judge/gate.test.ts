@@ -30,6 +30,7 @@ function cast(ours: readonly number[], persistence: readonly number[]): Hindcast
     residuals: [],
     paths: [],
     readings: [],
+    lossEvery: 1,
     originMs: Float64Array.from({ length: 100 }, (_, k) => (k - 1) * 60_000),
     pathLoss: ours.map((loss) => new Float64Array(100).fill(loss)),
     rivalPathLoss: [...persistence, ...persistence.map((loss) => loss / 100)].map((loss) =>

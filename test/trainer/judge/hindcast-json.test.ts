@@ -29,6 +29,7 @@ it('averages a rival over every signal, one that both forecast without error inc
     residuals: [],
     paths: [],
     readings: [],
+    lossEvery: 1,
     originMs: Float64Array.from({ length: 20 }, (_, k) => k * 60_000),
     pathLoss: [2, 0].map((loss) => Float64Array.from({ length: 20 }, (_, k) => loss * (1 + 0.1 * Math.sin(k)))),
     rivalPathLoss: [4, 0].map((loss) => new Float64Array(20).fill(loss)),

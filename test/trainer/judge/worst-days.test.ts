@@ -15,6 +15,7 @@ function cast(hours: number, losses: (signal: number, hour: number) => number): 
     horizon: 4,
     tickMs: HOUR_MS,
     origins: hours,
+    lossEvery: 1,
     originMs,
     fromMs: FIRST_MS,
     toMs: FIRST_MS + (hours + 4) * HOUR_MS,
@@ -64,6 +65,12 @@ describe('skillByBlock', () => {
     expect(blocks.map((block) => block.skill)).toEqual([0.5, 0.5, 0.5, 0.5, -0.5, -0.5, -0.5, -0.5]);
     expect(blocks[0]!.fromMs).toBe(FIRST_MS);
     expect(blocks.every((block, k) => k === 0 || block.fromMs === blocks[k - 1]!.toMs)).toBe(true);
+  });
+
+  it('gives as many where only every fourth origin was kept', () => {
+    const few = { ...cast(240, () => 1), lossEvery: 4 };
+    expect(skillByBlock(few, 0, 0)).toHaveLength(8);
+    expect(skillByBlock({ ...cast(8, () => 1), lossEvery: 4 }, 0, 0)).toHaveLength(4);
   });
 
   it('gives fewer where a stretch would be shorter than two horizons', () => {
