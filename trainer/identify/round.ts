@@ -39,15 +39,13 @@ const MOST_SIGNALS = 32;
 export function chooseRound(input: LearnInput, tickMs: number): Round | null {
   const rounds = roundsWorthTrying(input, tickMs);
   if (rounds.length === 0 || input.signalCount > MOST_SIGNALS) return null;
-  const skip = Math.max(...rounds);
   const signals = Array.from({ length: input.signalCount }, (_, i) => i);
-  const without = signals.map((i) => ownErrors(input, i, null, skip));
   let best: { round: Round; gain: number } | null = null;
   for (const ticks of rounds) {
     let gain = 0;
     const weight = Float64Array.from(signals, (i) => {
-      const tried = WEIGHTS.map((w) => ({ w, ...ownErrors(input, i, { ticks, weight: Float64Array.of(w) }, skip) }));
-      const plain = without[i];
+      const plain = ownErrors(input, i, null, ticks);
+      const tried = WEIGHTS.map((w) => ({ w, ...ownErrors(input, i, { ticks, weight: Float64Array.of(w) }, ticks) }));
       const mean = (errors: readonly number[]): number => geometric(errors, plain.weights);
       const [first, second] = tried;
       const least = mean(second.errors) < mean(first.errors) ? second : first;

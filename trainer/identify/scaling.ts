@@ -1,6 +1,6 @@
 /**
- * How each channel is brought to zero mean and unit variance, and the widest values folded in. Both come from the
- * learning part alone. The range is robust: readings absurdly far from the bulk neither move the mean nor open the clip.
+ * How each channel is brought to zero mean and unit variance, from the learning part alone, and the widest values folded in,
+ * for which the calibration part counts too. The range is robust: readings absurdly far from the bulk neither move the mean nor open the clip.
  */
 import { TrainError } from '../errors.ts';
 import type { Series } from '../history/series.ts';
@@ -24,17 +24,25 @@ const LEAST_READINGS = 16;
 /**
  * Scalings of all channels.
  *
- * shapes  learnTicks the length of the learning part from the series' start; steps (nc) lattice steps; result (nc)
+ * shapes  learnTicks the length of the learning part from the series' start; clipTicks that of learning and calibration
+ *         part together; steps (nc) lattice steps; result (nc)
  * units   the signals'
  * throws  TrainError 'history' naming a channel without readings, or where every signal is constant
  * source  own choice of robust range; the clip's share as measured to be wide enough on real records
  * cost    O(nc T log T)
  */
-export function findScalings(series: Series, learnTicks: number, steps: readonly number[]): Scaling[] {
+export function findScalings(
+  series: Series,
+  learnTicks: number,
+  clipTicks: number,
+  steps: readonly number[],
+): Scaling[] {
   const scalings = series.values.map((y, c) => {
     const read = y.subarray(0, learnTicks).filter((value) => Number.isFinite(value));
     if (read.length < LEAST_READINGS) throw tooFew(series, c, read.length, learnTicks);
-    return scalingOf(read, steps[c]);
+    const scaling = scalingOf(read, steps[c]);
+    const later = y.subarray(learnTicks, clipTicks).filter((value) => Number.isFinite(value));
+    return later.length === 0 || scaling.isConstant ? scaling : withRoomFor(scaling, read, later);
   });
   if (scalings.slice(0, series.signalCount).every((scaling) => scaling.isConstant)) {
     throw new TrainError(
@@ -69,6 +77,20 @@ function scalingOf(read: Float64Array, step: number): Scaling {
     clipLow: low - CLIP_SHARE * range,
     clipHigh: high + CLIP_SHARE * range,
     isConstant,
+  };
+}
+
+/** Clips that also hold what came after the learning part: a plant that grows out of its past is not cut off by it. */
+function withRoomFor(scaling: Scaling, read: Float64Array, later: Float64Array): Scaling {
+  const all = new Float64Array(read.length + later.length);
+  all.set(read);
+  all.set(later, read.length);
+  const [low, high] = believedRange(all.sort());
+  const room = CLIP_SHARE * (high - low);
+  return {
+    ...scaling,
+    clipLow: Math.min(scaling.clipLow, low - room),
+    clipHigh: Math.max(scaling.clipHigh, high + room),
   };
 }
 

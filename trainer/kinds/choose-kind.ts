@@ -27,6 +27,9 @@ const KINDS: Readonly<Record<Model['kind'], TryKind>> = {
 /** A larger bundle is taken only for this gain in squared error, on geometric average over the signals. */
 const TIE = 0.002;
 
+/** A bundle with less than this share of its tensors left over was cut to fit. */
+const TIGHT = 0.05;
+
 /** One kind's result, for people. */
 export interface Tried {
   readonly kind: Model['kind'];
@@ -55,7 +58,13 @@ export interface KindChoice {
 export function chooseKind(attempt: Attempt): KindChoice {
   const { kind } = attempt.options;
   const kinds = kind === 'auto' ? (Object.keys(KINDS) as Model['kind'][]) : [kind];
-  const candidates = kinds.map((one) => KINDS[one](attempt)).filter((candidate) => candidate !== null);
+  const candidates: Candidate[] = [];
+  for (const one of kinds) {
+    const [linear] = candidates;
+    if (one === 'dense' && linear !== undefined && !isTight(attempt, linear)) continue;
+    const candidate = KINDS[one](attempt);
+    if (candidate !== null) candidates.push(candidate);
+  }
   if (candidates.length === 0) {
     throw new TrainError(
       'options',
@@ -82,6 +91,11 @@ export function chooseKind(attempt: Attempt): KindChoice {
  * Errors without a plan; where inputs have plans, the geometric mean of those and of the errors under a true plan, since the
  * model will be asked for both.
  */
+/** Whether the linear kind had to be cut to fit: only then can a recursion say more in the same bytes. */
+function isTight(attempt: Attempt, linear: Candidate): boolean {
+  return attempt.bytesLeft(linear.sections) < TIGHT * encode(linear.sections).length;
+}
+
 function calibrationErrors(attempt: Attempt, candidate: Candidate): Float64Array {
   const { split, series, prepared, site } = attempt;
   const fromTick = split.calibrate.fromTick - series.firstTick;
