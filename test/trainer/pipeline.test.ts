@@ -104,16 +104,17 @@ describe('fit', () => {
     expect(mean(hindcast.mse) / mean(hindcast.rivalMse, 12 * rival)).toBeLessThan(0.4);
   });
 
-  it('carries lags through to the gateway where the plant needs them', async () => {
+  it('carries lags through to the gateway where the plant needs them: what flows in shows five ticks later', async () => {
     const next = recurrence(41);
     const normal = gaussians(() => next() / 2 ** 32);
-    const echo = new Float64Array(3000);
-    for (let t = 0; t < 3000; t++) echo[t] = Math.round(100 * (0.8 * (echo[t - 5] ?? 0) + normal())) / 100;
-    const result = await run(seriesOf(['level'], [echo]));
+    const flow = Float64Array.from({ length: 3000 }, () => Math.round(100 * normal()) / 100);
+    const level = flow.map((_, t) => Math.round(100 * (2 * (flow[t - 5] ?? 0) + normal())) / 100);
+    const result = await run(seriesOf(['level', 'flow'], [level, flow], 1), { kind: 'linear' });
     expect(result.chosen.bank).toMatch(/lags/);
-    // One step ahead only the noise of variance 1 is unknown: 590 origins, so three standard errors are 0.17.
-    expect(result.hindcast.mse[0]).toBeGreaterThan(0.83);
-    expect(result.hindcast.mse[0]).toBeLessThan(1.17);
+    // Three steps ahead only the noise of variance 1 is unknown, of 5 in all: 590 origins, so three standard errors are 0.17;
+    // a hundred weights learned from 1800 ticks cost 0.06 more.
+    expect(result.hindcast.mse[2]).toBeGreaterThan(0.83);
+    expect(result.hindcast.mse[2]).toBeLessThan(1.23);
   });
 
   it('is not thrown by one wild spell among the readings it learns from', async () => {
@@ -233,7 +234,7 @@ describe('refusals', () => {
       2,
     );
     expect((await refusal(short)).message).toMatch(
-      /holds 150 ticks of 3600 s; expected at least 227 for a horizon of 12/,
+      /holds 150 ticks of 3600 s; expected at least 180 for a horizon of 12/,
     );
   });
 

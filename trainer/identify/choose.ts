@@ -29,7 +29,7 @@ export interface Choice {
 
 /** A smaller bank within this share of the best is preferred. */
 const TIE = 0.002;
-/** Lags are taken in for this sure gain, from the first step on as far as it is there. */
+/** Lags are taken in for this sure gain, in the groups of steps where it is there. */
 const LAG_GAIN = 0.002;
 /**
  * A signal takes the level for this gain, surer than others: where the level of a plant shifts later, it will draw forecasts
@@ -66,14 +66,15 @@ export function choose(
   const { size, plain, plainLevel } = chooseSize(trial, bank);
   const lagged = { ...size, lags: bank.lags.length };
   const withLags = bank.lags.length > 0 ? variant(trial, bank, lagged, plain) : plain;
-  const reach = lagReach(trial, plain, withLags);
-  const lagsLevel = reach > 0 ? variant(trial, bank, { ...lagged, level: 1 }, plainLevel) : plainLevel;
+  const isLagged = laggedGroups(trial, plain, withLags);
+  const hasLags = isLagged.includes(true);
+  const lagsLevel = hasLags ? variant(trial, bank, { ...lagged, level: 1 }, plainLevel) : plainLevel;
   const own = joinLevels(
     trial,
-    settleOwn(trial, (g) => (g < reach ? withLags : plain)),
-    settleOwn(trial, (g) => (g < reach ? lagsLevel : plainLevel)),
+    settleOwn(trial, (g) => (isLagged[g] ? withLags : plain)),
+    settleOwn(trial, (g) => (isLagged[g] ? lagsLevel : plainLevel)),
   );
-  const crossFeatures = [plain.kept, ...(reach > 0 ? [withLags.kept] : []), plainLevel.kept];
+  const crossFeatures = [plain.kept, ...(hasLags ? [withLags.kept] : []), plainLevel.kept];
   return describe(bank, layout, trial, own, chooseCross(trial, own, crossFeatures));
 }
 
@@ -115,19 +116,16 @@ function variant(trial: OwnTrial, bank: Bank, size: BankSize, plain: OwnErrors):
   return tryOwn(trial, subBank(bank, size).kept, among);
 }
 
-/** Groups of steps, from the first on, in which lags gain surely. */
-function lagReach(trial: OwnTrial, plain: OwnErrors, withLags: OwnErrors): number {
-  if (plain === withLags) return 0;
+/** (groups) whether lags gain surely there. */
+function laggedGroups(trial: OwnTrial, plain: OwnErrors, withLags: OwnErrors): boolean[] {
   const { layout, groups } = trial;
   const without = settleOwn(trial, () => plain).errors;
   const within = settleOwn(trial, () => withLags).errors;
-  let reach = 0;
-  for (; reach <= groups[groups.length - 1]; reach++) {
-    const inGroup = (_i: number, s: number): boolean => groups[s] === reach;
+  return Array.from({ length: groups[groups.length - 1] + 1 }, (_, g) => {
+    const inGroup = (_i: number, s: number): boolean => groups[s] === g;
     const gained = sumOver(within, layout.steps, inGroup);
-    if (!gainsSurely(gained, sumOver(without, layout.steps, inGroup), LAG_GAIN, trial.weights)) break;
-  }
-  return reach;
+    return gainsSurely(gained, sumOver(without, layout.steps, inGroup), LAG_GAIN, trial.weights);
+  });
 }
 
 /**

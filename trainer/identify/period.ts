@@ -20,6 +20,10 @@ const MOST_OTHERS = 2;
 /** A peak this near to a harmonic of a period already taken, in bins of the spectrum or as a share, says nothing new. */
 const HARMONIC_BINS = 2.5;
 const HARMONIC_SHARE = 0.02;
+/** Nor does one this near to the period itself: a broad peak has several tops. */
+const ALIKE_SHARE = 0.2;
+/** A further period need not be a whole number of ticks; a spectrum tells it to three digits. */
+const DIGITS = 3;
 const MAIN_HARMONICS = 12;
 const OTHER_HARMONICS = 3;
 
@@ -54,7 +58,7 @@ export function findPeriods(values: readonly Float64Array[], tickMs: number): Pe
     const isNew =
       !isHarmonic(period, main, size, MAIN_HARMONICS) &&
       others.every((known) => !isHarmonic(period, known, size, OTHER_HARMONICS));
-    if (isNew && isRepeated) others.push(Math.round(period));
+    if (isNew && isRepeated) others.push(Number(period.toPrecision(DIGITS)));
   }
   return { main: Math.round(main), others };
 }
@@ -72,7 +76,8 @@ function isHarmonic(period: number, known: number, size: number, most: number): 
   const bin = size / period;
   for (let m = 1; m <= most; m++) {
     const harmonic = (m * size) / known;
-    if (Math.abs(bin - harmonic) < Math.max(HARMONIC_BINS, HARMONIC_SHARE * harmonic)) return true;
+    const share = m === 1 ? ALIKE_SHARE : HARMONIC_SHARE;
+    if (Math.abs(bin - harmonic) < Math.max(HARMONIC_BINS, share * harmonic)) return true;
   }
   return false;
 }

@@ -20,6 +20,7 @@ function learned(channels: readonly Float64Array[]): LearnOutput {
   const scalings = findScalings(
     series,
     ends.learnTicks,
+    ends.calibrateEnd,
     channels.map(() => 0.001),
   );
   const filled = fillHistory(series, scalings, 0, H, ends);

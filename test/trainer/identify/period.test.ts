@@ -30,7 +30,7 @@ describe('findPeriods', () => {
         [17.3, 2],
       ]),
     ];
-    expect(findPeriods(values, HOUR_MS)).toEqual({ main: 24, others: [17] });
+    expect(findPeriods(values, HOUR_MS)).toEqual({ main: 24, others: [17.3] });
   });
 
   it('finds periods where no day is within reach, those of all signals before those of one', () => {
