@@ -11,7 +11,7 @@ import type { Filled } from './fill.ts';
 import { type Fold, foldWeights, gainsSurely, geometric, sumOver } from './fold-errors.ts';
 import type { LearnInput } from './learn.ts';
 import { aboutMeans, addMoments, pickMoments } from './moment-sets.ts';
-import { gatherMoments } from './moments.ts';
+import { gatherMoments, type Moments } from './moments.ts';
 import { trialSteps } from './step-groups.ts';
 
 const WEEK_MS = 7 * 86_400_000;
@@ -96,13 +96,21 @@ function ownErrors(
   });
   const folds: Fold[] = [];
   for (let g = Math.max(1, Math.min(3, groups.length - 2)); g < groups.length; g++) {
-    folds.push({ learn: aboutMeans(addMoments(groups.slice(0, g))), judge: groups[g] });
+    // About its means too: a record that only rises would otherwise take its last round's rise for a pattern.
+    folds.push({ learn: aboutMeans(addMoments(groups.slice(0, g))), judge: withoutTrend(groups[g]) });
   }
   const weights = foldWeights(folds);
   const trial: OwnTrial = { folds, weights, layout: { ...layout, steps: trials.steps.length }, groups: trials.groups };
   const tried = tryOwn(trial, kept, PENALTIES);
   const { errors } = settleOwn(trial, () => tried);
   return { errors: sumOver(errors, trials.steps.length, () => true), weights };
+}
+
+/** Moments about the means of a judging group itself. */
+function withoutTrend(moments: Moments): Moments {
+  const { origins, futureSums } = moments;
+  const energy = moments.energy.map((sum, k) => sum - (futureSums[k] * futureSums[k]) / origins);
+  return { ...aboutMeans(moments), energy };
 }
 
 function restOf(filled: Filled, round: Round | null, signal: number): Pick<Filled, 'values' | 'inLongGap'> {
