@@ -181,15 +181,20 @@ function commonOf({ layout, groups, weights }: OwnTrial, { errors }: Tried): num
   );
 }
 
-/** (folds) with each group's penalty. */
+/** (folds) with each group's penalty, the geometric mean over the signals: none speaks louder for being harder to know. */
 function scores(trial: OwnTrial, tried: Tried): number[] {
+  const { layout, groups } = trial;
   const common = commonOf(trial, tried);
-  return trial.folds.map((_, f) =>
-    common.reduce((sum, at, g) => {
-      const [one] = sumOver([tried.errors[at][f]], trial.layout.steps, (_i, s) => trial.groups[s] === g);
-      return sum + one;
-    }, 0),
-  );
+  const even = Array.from({ length: layout.signalCount }, () => 1 / layout.signalCount);
+  return trial.folds.map((_, f) => {
+    const bySignal = even.map((_share, i) =>
+      common.reduce((sum, at, g) => {
+        const [one] = sumOver([tried.errors[at][f]], layout.steps, (signal, s) => signal === i && groups[s] === g);
+        return sum + one;
+      }, 0),
+    );
+    return geometric(bySignal, even);
+  });
 }
 
 function settle(trial: OwnTrial, own: OwnChoice, tried: Tried): (Cell | null)[][] {

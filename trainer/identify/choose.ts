@@ -74,7 +74,9 @@ export function choose(
     settleOwn(trial, (g) => (isLagged[g] ? withLags : plain)),
     settleOwn(trial, (g) => (isLagged[g] ? lagsLevel : plainLevel)),
   );
-  const crossFeatures = [plain.kept, ...(hasLags ? [withLags.kept] : []), plainLevel.kept];
+  // What other channels did long ago may matter where a signal's own distant past does not.
+  const slow = subBank(bank, { ...size, means: bank.decays.length, level: 1 }).kept;
+  const crossFeatures = [plain.kept, ...(hasLags ? [withLags.kept] : []), plainLevel.kept, slow];
   return describe(bank, layout, trial, own, chooseCross(trial, own, crossFeatures));
 }
 
