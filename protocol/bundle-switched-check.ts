@@ -52,6 +52,7 @@ export const checkSwitched = (section: SwitchedTensors, around: AroundSwitched):
   if (r === 0) refuse('switched.outlookBasis', 'expected at least one column, got none');
   if (season.cols === 0) refuse('switched.season', 'expected at least one column, got none');
   const shapes: readonly (readonly [string, Tensor, number, number, readonly TensorType[]])[] = [
+    ['share', section.share, forecast.length, H, QUANTISED],
     ['centre', section.centre, M, k, SINGLE],
     ['spread', section.spread, 1, k, SINGLE],
     ['slope', section.slope, M * k, n, SINGLE],
@@ -60,6 +61,7 @@ export const checkSwitched = (section: SwitchedTensors, around: AroundSwitched):
     ['landing', section.landing, P * n, 1 + n, SINGLE],
     ['hazard', section.hazard, P, 2 + n, SINGLE],
     ['limit', section.limit, 1, n, SINGLE],
+    ['floodFrom', section.floodFrom, 1, n, SINGLE],
     ['stops', section.stops, 3, n, SINGLE],
     ['featureScale', section.featureScale, 1, F, SINGLE],
     ['outlook', section.outlook, n * r, 2 * F, QUANTISED],

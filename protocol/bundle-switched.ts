@@ -16,6 +16,8 @@ export interface SwitchedTensors {
   readonly discrete: readonly number[];
   readonly driven: readonly number[];
   readonly forecast: readonly number[];
+  /** (q × H) i8: share of the path that comes from here, 0 to 1. */
+  readonly share: Tensor;
   /** (M × k) f32: what each mode says of each near-discrete signal where the driven ones are 0. */
   readonly centre: Tensor;
   /** (1 × k) f32: its spread. */
@@ -38,6 +40,8 @@ export interface SwitchedTensors {
   readonly decays: readonly number[];
   /** (1 × n) f32: largest disturbance believed. */
   readonly limit: Tensor;
+  /** (1 × n) f32: size of a signal's third mean beyond which its disturbance is a flood that goes on. */
+  readonly floodFrom: Tensor;
   /** (3 × n) f32: where the plant itself holds a driven signal, below and above, ±1e6 for nowhere; and how near counts. */
   readonly stops: Tensor;
   /** (1 × F) f32 */

@@ -18,6 +18,8 @@ export function sectionOf(
     driven: Int32Array.from(tensors.driven),
     inputs: Int32Array.from({ length: channelCount - signalCount }, (_, v) => signalCount + v),
     forecast: Int32Array.from(tensors.forecast),
+    // Rounding carries a share of one past it by the last bit of its row's scale.
+    share: dequantise(tensors.share).map((value) => Math.min(1, Math.max(0, value))),
     centre: dequantise(tensors.centre),
     spread: dequantise(tensors.spread),
     drift: dequantise(tensors.drift),
@@ -31,6 +33,7 @@ export function sectionOf(
     habit: tensors.habit,
     decays: Float64Array.from(tensors.decays),
     disturbanceLimit: dequantise(tensors.limit),
+    floodFrom: dequantise(tensors.floodFrom),
     stops: dequantise(tensors.stops),
     featureScale: dequantise(tensors.featureScale),
     outlook: dequantise(tensors.outlook),

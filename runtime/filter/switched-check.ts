@@ -46,6 +46,7 @@ export function checkSwitched(model: BankModel, section: SwitchedSection): void 
   const c = correction.basis.length / model.horizon;
   requireWhole(c, 'switched.correction.basis / horizon', 0, 64);
   const lengths: readonly (readonly [string, Float64Array, number])[] = [
+    ['share', section.share, forecast.length * model.horizon],
     ['centre', section.centre, M * k],
     ['spread', section.spread, k],
     ['drift', section.drift, M * n],
@@ -54,6 +55,7 @@ export function checkSwitched(model: BankModel, section: SwitchedSection): void 
     ['hazard', section.hazard, P * (n + 2)],
     ['slope', section.slope, M * k * n],
     ['disturbanceLimit', section.disturbanceLimit, n],
+    ['floodFrom', section.floodFrom, n],
     ['stops', section.stops, 3 * n],
     ['featureScale', section.featureScale, F],
     ['outlook', section.outlook, n * r * 2 * F],
@@ -77,6 +79,7 @@ export function checkSwitched(model: BankModel, section: SwitchedSection): void 
   requireEach(decays, 'switched.decays', (value) => value > 0 && value < 1, 'more than 0 and less than 1');
   requireEach(section.spread, 'switched.spread', (value) => value >= 1e-6, '1e-6 or more');
   requireEach(section.disturbanceLimit, 'switched.disturbanceLimit', (value) => value >= 1e-9, '1e-9 or more');
+  requireEach(section.share, 'switched.share', (value) => value >= 0 && value <= 1, '0 to 1');
   requireEach(correction.limit, 'switched.correction.limit', (value) => value >= 0, 'zero or more');
   requireField(section.habit >= 0 && section.habit < 1, 'switched.habit', '0 to below 1', section.habit);
   for (let m = 0; m < M; m++) {

@@ -105,7 +105,7 @@ function clipped(value: number, most: number): number {
 }
 
 /**
- * Adds the correction to the paths of the forecast signals.
+ * Adds the correction to the paths of the forecast signals, by the section's share in them.
  *
  * shapes  value (nc); out (ny × steps)
  * cost    O(D · (summary + q·c) + q · steps · c); allocates nothing
@@ -115,6 +115,7 @@ export function correct(
   core: SwitchedCore,
   buffers: CorrectionBuffers,
   value: Float64Array,
+  horizon: number,
   steps: number,
   out: Float64Array,
 ): void {
@@ -128,6 +129,6 @@ export function correct(
     multiply(correction.basis, steps, c, coefficients, q * c, path, 0);
     const limit = correction.limit[q];
     const at = forecast[q] * steps;
-    for (let h = 0; h < steps; h++) out[at + h] += clipped(path[h], limit);
+    for (let h = 0; h < steps; h++) out[at + h] += section.share[q * horizon + h] * clipped(path[h], limit);
   }
 }

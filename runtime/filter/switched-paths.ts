@@ -141,7 +141,7 @@ function foresee(
     const at = i * horizon;
     multiply(section.outlookBasis, steps, r, core.coefficients, i * r, outlook, at);
     for (let h = steps - 1; h > 0; h--) outlook[at + h] -= outlook[at + h - 1];
-    for (let h = 0; h < steps; h++) outlook[at + h] += seasonAt(section, i, tick + 1 + h);
+    for (let h = 0; h < steps; h++) outlook[at + h] += core.flood[i] + seasonAt(section, i, tick + 1 + h);
   }
 }
 

@@ -37,6 +37,8 @@ export interface SwitchedSection {
   readonly inputs: Int32Array;
   /** (q) driven and near-discrete signals whose paths come from here, ascending; the others keep the linear ones. */
   readonly forecast: Int32Array;
+  /** (q × H) share of the path that is the section's, 0 to 1; the rest is the linear one. */
+  readonly share: Float64Array;
   /** (M × k) value of each near-discrete signal in each mode, and (k) its spread there. */
   readonly centre: Float64Array;
   readonly spread: Float64Array;
@@ -60,6 +62,8 @@ export interface SwitchedSection {
   readonly decays: Float64Array;
   /** (n) largest size of w that is believed. */
   readonly disturbanceLimit: Float64Array;
+  /** (n) size of a signal's third mean beyond which its disturbance is a flood, and what is beyond goes on. */
+  readonly floodFrom: Float64Array;
   /** (3 × n) values at which the plant itself holds a driven signal, below and above (±1e6: nowhere), and how near counts. */
   readonly stops: Float64Array;
   /** (F) scale of each feature, F = n·K + v·(K + 1): means of w by signal, then each input's value and means. */

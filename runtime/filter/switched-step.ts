@@ -8,9 +8,13 @@ import { discreteValue, goOn } from './switched-plant.ts';
 import type { SwitchedSection } from './switched-section.ts';
 
 /** Largest size of a scaled feature; they have a standard deviation near one in training, and floods reach far beyond. */
-export const SWITCHED_FEATURE_LIMIT = 60;
+export const SWITCHED_FEATURE_LIMIT = 200;
 /** Size beyond which a feature counts once more, with a weight of its own: floods answer to other rates than dry days. */
 export const SWITCHED_BEND = 1.5;
+/** Which mean of a disturbance, counted from 0, tells a flood: the third, of about ten ticks; or the last there is. */
+export const FLOOD_MEAN = 2;
+/** What a disturbance is beyond anything learned, nothing learned can foresee: this share of it is carried on. */
+const FLOOD_SHARE = 0.8;
 /** Least scale of the doubt. */
 export const LEAST_DOUBT = 0.25;
 /** Largest scale of the doubt. */
@@ -41,6 +45,8 @@ export interface SwitchedCore {
   readonly features: Float64Array;
   readonly coefficients: Float64Array;
   readonly doubt: Float64Array;
+  /** (n) part of each disturbance beyond anything learned that is carried on. */
+  readonly flood: Float64Array;
   /** (n) forecast of the disturbance's next step, season included. */
   readonly next: Float64Array;
   /** (n), (M), (M): scratch. */
@@ -75,6 +81,7 @@ export function createSwitchedCore(section: SwitchedSection): SwitchedCore {
     features: new Float64Array(2 * section.featureScale.length),
     coefficients: new Float64Array(section.outlook.length / (2 * section.featureScale.length)),
     doubt: new Float64Array(driven.length).fill(1),
+    flood: new Float64Array(driven.length),
     next: new Float64Array(driven.length),
     along: new Float64Array(driven.length),
     prior: new Float64Array(M),
@@ -226,10 +233,19 @@ export function deriveSwitched(section: SwitchedSection, core: SwitchedCore, tic
   const r = coefficients.length / driven.length;
   for (let i = 0; i < driven.length; i++) {
     multiply(outlookBasis, 1, r, coefficients, i * r, next, i);
-    next[i] += seasonAt(section, i, tick + 1);
+    core.flood[i] = floodOf(section, memory, i);
+    next[i] += core.flood[i] + seasonAt(section, i, tick + 1);
     let scale = doubtScale[i * (half + 1)];
     for (f = 0; f < half; f++)
       scale += doubtScale[i * (half + 1) + 1 + f] * (features[f] < 0 ? -features[f] : features[f]);
     core.doubt[i] = scale < LEAST_DOUBT ? LEAST_DOUBT : Math.min(scale, MOST_DOUBT);
   }
+}
+
+/** What of a signal's disturbance lies beyond anything learned, and stays. */
+function floodOf({ decays, floodFrom }: SwitchedSection, memory: Float64Array, i: number): number {
+  const K = decays.length;
+  const mean = memory[i * K + (FLOOD_MEAN < K ? FLOOD_MEAN : K - 1)];
+  const from = floodFrom[i];
+  return FLOOD_SHARE * (mean > from ? mean - from : mean < -from ? mean + from : 0);
 }

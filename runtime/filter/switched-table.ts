@@ -26,16 +26,17 @@ function logisticTable(): Float64Array {
 /**
  * 1 / (1 + e^−x).
  *
- * throws  nothing; NaN gives NaN; beyond ±20 the table's last value or one minus it
+ * throws  nothing; NaN gives NaN; 0 and 1 from −20 and 20 on
  * source  Lagrange's four-point formula, Abramowitz and Stegun (1964) 25.2.13
  * cost    O(1); allocates nothing
  */
 export function logistic(x: number): number {
-  let a = x < 0 ? -x : x;
-  if (a > LAST / STEPS_PER_UNIT) a = LAST / STEPS_PER_UNIT;
+  const most = LAST / STEPS_PER_UNIT;
+  if (x <= -most) return 0;
+  if (x >= most) return 1;
+  const a = x < 0 ? -x : x;
   const at = a * STEPS_PER_UNIT;
-  const floor = Math.floor(at);
-  const k = floor < LAST ? floor : LAST - 1;
+  const k = Math.floor(at);
   const p = at - k;
   const right =
     (-p * (p - 1) * (p - 2) * table[k]) / 6 +

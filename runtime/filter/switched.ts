@@ -73,9 +73,13 @@ function paths(
     let row = 0;
     while (row < n && switched.driven[row] !== channel) row++;
     if (row === n) while (switched.discrete[row - n] !== channel) row++;
-    for (let h = 0; h < steps; h++) out[channel * steps + h] = rollout.sums[row * horizon + h];
+    const at = channel * steps;
+    for (let h = 0; h < steps; h++) {
+      const share = switched.share[q * horizon + h];
+      out[at + h] += share * (rollout.sums[row * horizon + h] - out[at + h]);
+    }
   }
-  correct(switched, section, core.correction, state.value, steps, out);
+  correct(switched, section, core.correction, state.value, horizon, steps, out);
 }
 
 function copyOut(model: SwitchedModel, core: SwitchedKernelCore, channel: number, out: Float64Array, at: number): void {

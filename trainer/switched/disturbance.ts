@@ -24,6 +24,8 @@ const LIMIT_SD = 12;
 /** Gain of the mean that counts as lasting, and how much larger a disturbance than the largest such mean is believed. */
 const LASTING_SHARE = 0.2;
 const LASTING_ROOM = 4;
+/** A disturbance twice as strong as all the equipment together is believed, whatever was seen. */
+const DRIFT_ROOM = 2;
 
 /**
  * Works out the disturbance over the whole history; season and limits from the part learned from.
@@ -60,7 +62,8 @@ export function findDisturbance(
       season.set(seasonOf(out.subarray(0, history.ticks), periodTicks, bins, firstTick), i * bins);
       for (let t = 0; t < T; t++) out[t] -= seasonAt(season, i * bins, bins, periodTicks, firstTick + t);
     }
-    limit[i] = limitOf(out.subarray(0, history.ticks));
+    const reach = DRIFT_ROOM * spanOf(drift, n, i);
+    limit[i] = Math.max(reach, limitOf(out.subarray(0, history.ticks)));
     return out;
   });
   return { w, limit, season, bins, periodTicks: hasSeason ? periodTicks : 0 };
@@ -102,6 +105,12 @@ function limitOf(w: Float64Array): number {
     most = Math.max(most, Math.abs(mean));
   }
   return Math.max(LIMIT_SD * robustSd(w), LASTING_ROOM * most);
+}
+
+/** From the least to the largest drift of a signal over the modes. */
+function spanOf(drift: Float64Array, n: number, i: number): number {
+  const own = drift.filter((_, at) => at % n === i);
+  return Math.max(...own) - Math.min(...own);
 }
 
 /** Standard deviation by the 16th and 84th percentile, or the plain one where they coincide. */

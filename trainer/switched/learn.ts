@@ -66,6 +66,7 @@ export function learnSwitched(input: SwitchedInput): SwitchedSection | null {
   return {
     modeCount: modes.count,
     forecast,
+    share: new Float64Array(forecast.length * horizon).fill(1),
     correction: { ...NO_CORRECTION, limit: new Float64Array(forecast.length) },
     discrete: Int32Array.from(modes.discrete),
     driven: Int32Array.from(driven),
@@ -80,6 +81,7 @@ export function learnSwitched(input: SwitchedInput): SwitchedSection | null {
     disturbanceLimit: disturbance.limit,
     stops: stopsOf(history.stops),
     featureScale: outlook.featureScale,
+    floodFrom: outlook.floodFrom,
     outlook: outlook.outlook,
     outlookBasis: outlook.outlookBasis,
     seasonTicks: disturbance.periodTicks,

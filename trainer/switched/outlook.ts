@@ -3,7 +3,7 @@
  * inputs, a few curves over the horizon, and two more curves for how far it may miss.
  */
 
-import { SWITCHED_BEND, SWITCHED_FEATURE_LIMIT } from '@stillwell/runtime/filter';
+import { FLOOD_MEAN, SWITCHED_BEND, SWITCHED_FEATURE_LIMIT } from '@stillwell/runtime/filter';
 import { cholesky, solveCholesky } from '../linalg/cholesky.ts';
 import { symmetricEigen } from '../linalg/eigen.ts';
 import { multiply, multiplyTransposed, transpose } from '../linalg/products.ts';
@@ -14,6 +14,8 @@ import { doubtOf } from './doubt.ts';
 export interface Outlook {
   readonly decays: Float64Array;
   readonly featureScale: Float64Array;
+  /** (n) */
+  readonly floodFrom: Float64Array;
   /** (n·r × F) */
   readonly outlook: Float64Array;
   /** (H × r) */
@@ -60,6 +62,7 @@ export function fitOutlook(
   const plain = gatherFeatures(w, limit, inputs, decays, half);
   const featureScale = scaleFeatures(plain, half, learnTicks);
   const features = bend(plain, half);
+  const floodFrom = floodFromOf(plain, half, featureScale, n, decays.length, learnTicks);
   const width = 2 * half;
   const sums = w.map((one, i) => cumulate(one, limit[i]));
   const stride = Math.max(1, Math.floor((learnTicks - horizon) / 30_000));
@@ -79,7 +82,7 @@ export function fitOutlook(
   const small = shrink(map, all, width, n, horizon);
   const rebuilt = rebuild(small.outlook, small.outlookBasis, n, horizon, width, small.basisCount);
   const doubts = doubtOf(features, width, sums, horizon, learnTicks, rebuilt);
-  return { decays, featureScale, ...small, ...doubts, features };
+  return { decays, featureScale, floodFrom, ...small, ...doubts, features };
 }
 
 /** (T × F) raw features: means of the disturbance, then each input's value and means. */
@@ -127,6 +130,26 @@ function scaleFeatures(features: Float64Array, width: number, learnTicks: number
     features[k] = Math.max(-SWITCHED_FEATURE_LIMIT, Math.min(SWITCHED_FEATURE_LIMIT, scaled));
   }
   return scale;
+}
+
+/** A flood begins this far beyond the largest mean seen. */
+const FLOOD_ROOM = 1.25;
+
+/** (n) size of each signal's mean, of the kind the filter looks at, beyond which a disturbance counts as a flood. */
+function floodFromOf(
+  plain: Float64Array,
+  half: number,
+  scale: Float64Array,
+  n: number,
+  K: number,
+  learnTicks: number,
+): Float64Array {
+  return Float64Array.from({ length: n }, (_, i) => {
+    const at = i * K + Math.min(FLOOD_MEAN, K - 1);
+    let most = 0;
+    for (let t = 0; t < learnTicks; t++) most = Math.max(most, Math.abs(plain[t * half + at]));
+    return (FLOOD_ROOM * most) / scale[at];
+  });
 }
 
 /** Each row followed by its parts beyond the bend. */

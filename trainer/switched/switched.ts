@@ -8,18 +8,18 @@ import { chooseSize, sizeBytes } from '../identify/order.ts';
 import { completedValues, teachAgain } from '../identify/teach.ts';
 import type { Attempt, Candidate, KindSections } from '../kinds/candidate.ts';
 import { linearOfSize } from '../kinds/linear.ts';
-import { signalErrors } from '../quantise/audit.ts';
 import type { Learned, Size } from '../quantise/quantise.ts';
 import { fitCorrection } from './correction.ts';
 import { learnSwitched, type SwitchedInput } from './learn.ts';
 import { switchedTensors } from './round.ts';
+import { findShares } from './share.ts';
 
-/** The linear model under a section that forecasts every signal: its state is still published. */
+/** The least linear model under a section. */
 const LEAST_BASE: Size = { order: 8, basisCount: 4, hasOwn: false };
 /** Rounds of trying a smaller base until the document fits. */
 const MOST_ROUNDS = 4;
 /** A signal is given to the section only for this gain in squared error over the linear kind. */
-const LEAST_GAIN = 0.02;
+const LEAST_GAIN = 0.005;
 
 /**
  * The switched candidate; null, and quickly, where no near-discrete signal drives another.
@@ -35,9 +35,7 @@ export function trySwitched(attempt: Attempt): Candidate | null {
   const input = inputOf(attempt, prepared.learnTicks);
   const section = learnSwitched(input);
   if (section === null || hasRound(attempt, section)) return null;
-  const base = linearOfSize(attempt, taught.learned, LEAST_BASE);
-  const full = withCorrection(section, input, attempt);
-  const given = giveSignals(attempt, base, full);
+  const given = giveSignals(attempt, withCorrection(section, input, attempt));
   return given === null ? null : fitted(attempt, taught.learned, given);
 }
 
@@ -68,18 +66,18 @@ function withCorrection(section: SwitchedSection, input: SwitchedInput, { around
   return { ...section, correction: fitCorrection(section, input, { low, high }) };
 }
 
-/** The section for those signals alone that it forecasts better than the linear kind; null if none. */
-function giveSignals(attempt: Attempt, base: Candidate, section: SwitchedSection): SwitchedSection | null {
-  const { split, series, prepared } = attempt;
+/** The section with its shares, for those signals alone that it helps; null if none. */
+function giveSignals(attempt: Attempt, section: SwitchedSection): SwitchedSection | null {
+  const { split, series, prepared, taught, around } = attempt;
   const span = {
     fromTick: split.calibrate.fromTick - series.firstTick,
     toTick: split.calibrate.toTick - series.firstTick,
   };
-  const full = linearOfSize(attempt, attempt.taught.learned, judgedSize(attempt));
-  const linear = signalErrors(full.float, prepared.calm, span);
-  const switched = signalErrors(joined(base.float as BankModel, section), prepared.calm, span);
-  const keeps = Array.from(section.forecast, (i) => switched[i] < (1 - LEAST_GAIN) * linear[i]);
-  return keeps.includes(true) ? onlyFor(section, keeps, attempt.around.horizon) : null;
+  const { float } = linearOfSize(attempt, taught.learned, judgedSize(attempt));
+  const whole = joined(float as BankModel, section);
+  const { share, ratio } = findShares(float, whole, Array.from(section.forecast), prepared.calm, span);
+  const keeps = Array.from(ratio, (value) => value < 1 - LEAST_GAIN);
+  return keeps.includes(true) ? onlyFor({ ...section, share }, keeps, around.horizon) : null;
 }
 
 /** The size that the linear kind would have by itself. */
@@ -96,10 +94,11 @@ function onlyFor(section: SwitchedSection, keeps: readonly boolean[], horizon: n
     keep ? Array.from(correction.readout.subarray(q * rows, (q + 1) * rows)) : [],
   );
   const limit = correction.limit.filter((_, q) => keeps[q]);
-  const isUsed = limit.some((value) => value > 0) && horizon > 0;
+  const isUsed = limit.some((value) => value > 0);
   return {
     ...section,
     forecast: forecast.filter((_, q) => keeps[q]),
+    share: section.share.filter((_, at) => keeps[Math.floor(at / horizon)]),
     correction: isUsed
       ? { ...correction, readout: Float64Array.from(readout), limit }
       : { count: 0, readout: new Float64Array(0), basis: new Float64Array(0), limit },
@@ -109,7 +108,6 @@ function onlyFor(section: SwitchedSection, keeps: readonly boolean[], horizon: n
 /** The candidate with the largest base that fits; null where not even the least does. */
 function fitted(attempt: Attempt, learned: Learned, section: SwitchedSection): Candidate | null {
   const tensors = switchedTensors(section, attempt.around.horizon);
-  const covers = section.forecast.length === attempt.around.signalCount;
   const sectionsOf = (size: Size): KindSections => ({
     ...linearOfSize(attempt, learned, size).sections,
     kind: 'switched',
@@ -117,7 +115,6 @@ function fitted(attempt: Attempt, learned: Learned, section: SwitchedSection): C
   });
   const free = attempt.bytesLeft(sectionsOf(LEAST_BASE));
   if (free < 0) return null;
-  if (covers) return candidateOf(attempt, learned, LEAST_BASE, section, tensors);
   let tensorBytes = free + sizeBytes(LEAST_BASE, learned);
   for (let round = 0; round < MOST_ROUNDS; round++) {
     const size = chooseSize(learned, attempt.taught.calibrationMoments, tensorBytes);
@@ -171,11 +168,8 @@ function learnMore(attempt: Attempt, section: SwitchedSection, ticks: number): S
     found.driven.join() === section.driven.join();
   if (!isSame) return section;
   const full = section.correction.count > 0 ? withCorrection(found, input, attempt) : found;
-  return onlyFor(
-    full,
-    Array.from(full.forecast, (i) => section.forecast.includes(i)),
-    attempt.around.horizon,
-  );
+  const keeps = Array.from(full.forecast, (i) => section.forecast.includes(i));
+  return { ...onlyFor(full, keeps, attempt.around.horizon), share: section.share };
 }
 
 function joined(base: BankModel, switched: SwitchedSection): SwitchedModel {
