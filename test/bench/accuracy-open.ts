@@ -24,6 +24,12 @@ interface OpenTask extends PeerTask {
   readonly data: DataCase;
 }
 
+/** Ours: (origins × signals × horizon), and what made it. */
+interface Forecast {
+  readonly ahead: Float64Array;
+  readonly made: string;
+}
+
 /** A peer's mean squared error, and by signal and step. */
 interface PeerError {
   readonly name: string;
@@ -64,7 +70,7 @@ async function caseRow(data: DataCase, options: BenchOptions): Promise<Row | nul
   try {
     const task = taskOf(data, folder);
     const errors = await peerErrors(task, options);
-    let ours: Float64Array;
+    let ours: Forecast;
     try {
       ours = await ourForecast(task);
     } catch (error) {
@@ -75,8 +81,9 @@ async function caseRow(data: DataCase, options: BenchOptions): Promise<Row | nul
       (least, one) => (least === null || one.mse < least.mse ? one : least),
       null,
     );
-    const cells = errorCells(data, task.origins, ours, learnScales(data, task.learnTicks));
+    const cells = errorCells(data, task.origins, ours.ahead, learnScales(data, task.learnTicks));
     const mse = meanOf(cells);
+    options.note(`${data.name}: ours ${mse.toPrecision(4)}, ${ours.made}`);
     if (best !== null) noteSteps(data, cells, best, options);
     return row({
       suite: 'accuracy',
@@ -141,7 +148,7 @@ function noteSteps(data: DataCase, ours: Float64Array, best: PeerError, options:
 }
 
 /** Through the public door, as a person would: a file, a site, the defaults; then the gateway's filter over the whole record. */
-async function ourForecast({ data, origins, folder }: OpenTask): Promise<Float64Array> {
+async function ourForecast({ data, origins, folder }: OpenTask): Promise<Forecast> {
   const file = join(folder, 'history.csv');
   const names = [...data.signals, ...data.inputs];
   const lines = Array.from({ length: data.values[0]!.length }, (_, t) => {
@@ -151,7 +158,7 @@ async function ourForecast({ data, origins, folder }: OpenTask): Promise<Float64
   writeFileSync(file, `time,${names.join(',')}\n${lines.join('\n')}\n`);
   const site = siteOf(data);
   const { series, survey, lattices } = await loadHistory([file], site, { zone: 'UTC' });
-  const { model, document } = await fitHistory({ series, site, survey, lattices }, FIT_DEFAULTS);
+  const { model, document, chosen } = await fitHistory({ series, site, survey, lattices }, FIT_DEFAULTS);
   if (document.length > FIT_DEFAULTS.maxBytes) throw new Error(`bundle of ${document.length} bytes`);
   const state = createState(model);
   const width = data.signals.length * data.horizon;
@@ -167,7 +174,7 @@ async function ourForecast({ data, origins, folder }: OpenTask): Promise<Float64
     forecastPath(model, state, path);
     ahead.set(path, n * width);
   }
-  return ahead;
+  return { ahead, made: `${chosen.kind}: ${chosen.name}` };
 }
 
 function siteOf(data: DataCase): Site {

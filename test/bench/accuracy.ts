@@ -7,7 +7,7 @@ import { knownRows } from './accuracy-known.ts';
 import { openRows } from './accuracy-open.ts';
 import { planRows } from './accuracy-plans.ts';
 import { splitRows } from './accuracy-split.ts';
-import type { BenchOptions, Row } from './harness.ts';
+import { type BenchOptions, isWanted, type Row } from './harness.ts';
 
 /** The plant of switched pumps, a suite of rows in a file of its own. */
 const WET_WELL = new URL('./wet-well.js', import.meta.url);
@@ -18,6 +18,7 @@ export async function* rows(options: BenchOptions): AsyncIterable<Row> {
   yield* knownRows(options);
   yield* planRows(options);
   yield* openRows(options);
+  if (!isWanted(options, 'wet well')) return;
   if (existsSync(WET_WELL)) yield* ((await import(WET_WELL.href)) as WetWell).wetWellRows(options);
   else options.note('wet well: no rows yet');
 }
