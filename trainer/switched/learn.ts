@@ -10,7 +10,7 @@ import { findDriven } from './driven.ts';
 import { driftBySwitches } from './jumps.ts';
 import { findModes } from './modes.ts';
 import { fitOutlook, type Outlook } from './outlook.ts';
-import { learnSwitching } from './pairs.ts';
+import { learnSwitching, usualStay } from './pairs.ts';
 import { fitSlopes } from './slopes.ts';
 import { findStops, type Stops } from './stops.ts';
 
@@ -28,6 +28,8 @@ export interface SwitchedInput {
 
 /** Share of the distance of a near-discrete reading from its mode's value that is remembered. */
 const HABIT = 0.1;
+/** Stays that a season lasts at least. */
+const SEASON_STAYS = 12;
 /** Stands for no stop, far beyond any standardised value. */
 const NO_STOP = 1e6;
 
@@ -55,7 +57,9 @@ export function learnSwitched(input: SwitchedInput): SwitchedSection | null {
     ticks: learnTicks,
   };
   const drift = driftBySwitches(history, fitDrift(history));
-  const disturbance = findDisturbance(history, drift, input.periodTicks, input.firstTick);
+  // A period hardly longer than a cycle of the equipment is that cycle, not a season of what disturbs it.
+  const hasSeason = input.periodTicks >= SEASON_STAYS * usualStay(modes.of, learnTicks);
+  const disturbance = findDisturbance(history, drift, hasSeason ? input.periodTicks : 0, input.firstTick);
   const inputs = values.slice(signalCount);
   const outlook = fitOutlook(disturbance, inputs, horizon, learnTicks);
   const next = nextSteps(input, disturbance, outlook);

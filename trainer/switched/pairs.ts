@@ -129,8 +129,16 @@ function dwells(mode: Int8Array, ticks: number): Int32Array {
   return out;
 }
 
-/** Mean ticks of a stay. */
-function usualStay(mode: Int8Array, ticks: number): number {
+/**
+ * Mean ticks of a stay in a mode.
+ *
+ * shapes  mode (ticks or more)
+ * units   ticks
+ * throws  nothing
+ * source  none
+ * cost    O(ticks)
+ */
+export function usualStay(mode: Int8Array, ticks: number): number {
   let stays = 1;
   for (let t = 1; t < ticks; t++) if (mode[t] !== mode[t - 1]) stays++;
   return ticks / stays;

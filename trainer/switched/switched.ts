@@ -30,19 +30,29 @@ const LEAST_GAIN = 0.005;
  * source  none
  * cost    learning, two replays of the calibration part
  */
-export function trySwitched(attempt: Attempt): Candidate | null {
-  const { prepared, taught } = attempt;
-  const input = inputOf(attempt, prepared.learnTicks);
+export function trySwitched(asked: Attempt): Candidate | null {
+  const input = inputOf(asked, asked.prepared.learnTicks);
   const section = learnSwitched(input);
-  if (section === null || hasRound(attempt, section)) return null;
+  if (section === null) return null;
+  const attempt = withoutRound(asked);
   const given = giveSignals(attempt, withCorrection(section, input, attempt));
-  return given === null ? null : fitted(attempt, taught.learned, given);
+  // Moments of the calibration part are those of the history less its round: a size is chosen by them only without one.
+  return given === null ? null : fitted(attempt, asked.taught.round === null, given);
 }
 
-/** Whether a round is taken away from a signal of the section, whose modes would then not be seen. */
-function hasRound({ taught }: Attempt, { driven, discrete }: SwitchedSection): boolean {
-  const { round } = taught;
-  return round !== null && [...driven, ...discrete].some((i) => round.weight[i] > 0);
+/**
+ * The attempt with no round taken away: a mode does not show in what a signal does beyond a round ago. Where there was one,
+ * the linear map is learned once more without it.
+ */
+function withoutRound(attempt: Attempt): Attempt {
+  const { prepared, taught, around } = attempt;
+  if (taught.round === null) return attempt;
+  const plain = { ...taught, round: null };
+  return {
+    ...attempt,
+    taught: { ...plain, learned: teachAgain(prepared, plain, prepared.learnTicks) },
+    around: { ...around, round: null },
+  };
 }
 
 /** The completed history as the section learns it. */
@@ -106,7 +116,8 @@ function onlyFor(section: SwitchedSection, keeps: readonly boolean[], horizon: n
 }
 
 /** The candidate with the largest base that fits; null where not even the least does. */
-function fitted(attempt: Attempt, learned: Learned, section: SwitchedSection): Candidate | null {
+function fitted(attempt: Attempt, mayChoose: boolean, section: SwitchedSection): Candidate | null {
+  const { learned } = attempt.taught;
   const tensors = switchedTensors(section, attempt.around.horizon);
   const sectionsOf = (size: Size): KindSections => ({
     ...linearOfSize(attempt, learned, size).sections,
@@ -117,9 +128,10 @@ function fitted(attempt: Attempt, learned: Learned, section: SwitchedSection): C
   if (free < 0) return null;
   let tensorBytes = free + sizeBytes(LEAST_BASE, learned);
   for (let round = 0; round < MOST_ROUNDS; round++) {
-    const size = chooseSize(learned, attempt.taught.calibrationMoments, tensorBytes);
+    const size = mayChoose ? chooseSize(learned, attempt.taught.calibrationMoments, tensorBytes) : judgedSize(attempt);
     const left = attempt.bytesLeft(sectionsOf(size));
     if (left >= 0) return candidateOf(attempt, learned, size, section, tensors);
+    if (!mayChoose) break;
     tensorBytes += left;
   }
   return candidateOf(attempt, learned, LEAST_BASE, section, tensors);
