@@ -33,7 +33,7 @@ function createCore(model: SwitchedModel): SwitchedKernelCore {
     section: createSwitchedCore(switched),
     rollout: createRollout(switched, horizon, standardised(model.clipLow), standardised(model.clipHigh)),
     correction: createCorrection(switched, switched.correction.count, horizon),
-    isDue: true,
+    isDue: false,
   };
 }
 
@@ -44,7 +44,6 @@ function beforeTick(model: SwitchedModel, core: SwitchedKernelCore, state: Filte
     core.section.previous[i] = state.value[driven[i]];
     core.section.wasRead[i] = state.age[driven[i]] === 0 ? 1 : 0;
   }
-  core.isDue = true;
 }
 
 function refresh(model: SwitchedModel, core: SwitchedKernelCore, state: FilterState): void {
@@ -132,8 +131,12 @@ export const switchedKernel: Kernel<SwitchedModel, SwitchedKernelCore> = {
   settle(model, core, state, channel) {
     linearKernel.settle(asLinear(model), core, state, channel);
     settleInput(model.switched, core.section, channel, state.value);
+    core.isDue = true;
   },
-  advance: (model, core, state, channel) => linearKernel.advance(asLinear(model), core, state, channel),
+  advance(model, core, state, channel) {
+    linearKernel.advance(asLinear(model), core, state, channel);
+    core.isDue = true;
+  },
   refresh,
   paths,
 };
