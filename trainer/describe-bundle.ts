@@ -2,6 +2,7 @@
  * A bundle in words and tables: what it forecasts, how well the judge found it to, where it came from, what it weighs.
  */
 import { type Bundle, dequantise, encode, type Tensor } from '@stillwell/protocol';
+import type { Model } from '@stillwell/runtime/filter';
 import { hex, type OpenDocument } from './bundle-file.ts';
 import { bytesText, shortNumber, spanText, textTable } from './text-table.ts';
 
@@ -22,7 +23,10 @@ export function bundleFacts({ bundle, document, digest, model }: OpenDocument) {
     coverage: bundle.bounds.coverage,
     warmupTicks: bundle.warmupTicks,
     order: model.order,
-    ...('featureCount' in model ? { basisCount: model.basisCount, featuresPerChannel: model.featureCount } : {}),
+    ...('basisCount' in model ? { basisCount: model.basisCount } : {}),
+    ...('featureCount' in model ? { featuresPerChannel: model.featureCount } : {}),
+    madeOf: madeOf(bundle, model),
+    roundTicks: bundle.round?.ticks ?? null,
     channels: bundle.channels.map(({ name, role, unit, aggregate, lattice, clip, limits, residualScale, scale }) => ({
       name,
       role,
@@ -69,8 +73,8 @@ export function bundleText(facts: BundleFacts): string {
     `  made        ${facts.madeAt}, document format ${facts.format}, arithmetic ${facts.arithmetic}`,
     `  forecasts   ${facts.horizon} ticks of ${spanText(facts.tickMs)} ahead (${spanText(facts.horizon * facts.tickMs)}), ` +
       `bounds meant to hold ${Math.round(facts.coverage * 100)} %`,
-    `  model       order ${facts.order}, ${facts.featuresPerChannel} features a channel, ${facts.basisCount} horizon shapes, ` +
-      `warm-up ${facts.warmupTicks} ticks`,
+    `  model       ${facts.madeOf}, warm-up ${facts.warmupTicks} ticks`,
+    ...roundText(facts),
     '',
     channelTable(facts),
     '',
@@ -81,6 +85,34 @@ export function bundleText(facts: BundleFacts): string {
     '',
     sizeText(facts),
   ].join('\n');
+}
+
+/** What the model is made of, in words. */
+function madeOf({ channels, switched }: Bundle, model: Model): string {
+  if (model.kind === 'driven') {
+    const { memberCount, order, randomCount } = model;
+    return `${memberCount} simulations of ${order / memberCount} states, ${randomCount} random features each`;
+  }
+  const shapes = `${model.basisCount} horizon shapes`;
+  if (model.kind === 'dense') {
+    const lags = model.lags.length === 0 ? '' : `, ${model.lags.length} lags a signal`;
+    return `recursion of ${model.order} numbers, ${model.pairCount} of its poles complex, ${shapes}${lags}`;
+  }
+  const bank = `order ${model.order}, ${model.featureCount} features a channel, ${shapes}`;
+  if (model.kind === 'featured') {
+    return `${bank}; ${model.correctionCount} corrections from ${model.randomCount} random features`;
+  }
+  if (model.kind === 'linear' || switched === undefined) return bank;
+  const names = (list: readonly number[]): string => list.map((i) => channels[i].name).join(', ');
+  const { modes, discrete, driven, forecast } = switched;
+  return `${bank}; ${modes} modes seen in ${names(discrete)}, driving ${names(driven)}, for forecasts of ${names(forecast)}`;
+}
+
+function roundText({ roundTicks, tickMs }: BundleFacts): string[] {
+  if (roundTicks === null) return [];
+  return [
+    `  round       what was a round of ${roundTicks} ticks ago (${spanText(roundTicks * tickMs)}) is taken away first`,
+  ];
 }
 
 /** What a lasting change of each planned input by one brings to each signal in the end of the horizon, in their units. */
@@ -201,12 +233,14 @@ function judgeRows(bundle: Bundle) {
 
 /** Encoded bytes of each top-level field that is worth a word, the rest together. */
 function partSizes(bundle: Bundle): Record<string, number> {
-  const { linear } = bundle;
+  const { linear, dense, features, switched, driven } = bundle;
+  const kinds = { recursion: dense, 'random features': features, modes: switched, simulations: driven };
   const named = {
     ...(linear === undefined
       ? {}
       : { bottleneck: linear.bottleneck, 'read-out': linear.readout, 'horizon shapes': linear.horizonBasis }),
     ...(linear?.own === undefined ? {} : { 'own part': linear.own }),
+    ...Object.fromEntries(Object.entries(kinds).filter(([, section]) => section !== undefined)),
     ...(bundle.response === undefined ? {} : { plans: bundle.response }),
     bounds: bundle.bounds,
     seasonal: bundle.seasonal,
