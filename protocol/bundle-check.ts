@@ -60,10 +60,25 @@ const SECTIONS = {
   driven: ['driven'],
 } as const satisfies Record<BundleKind, readonly (keyof Bundle)[]>;
 
+/** Kinds whose own recursion sees what a round ago was, and a plan of the inputs: a section for it would count twice. */
+const WITHOUT = { round: ['switched', 'driven'], response: ['driven'] } as const satisfies Partial<
+  Record<keyof Bundle, readonly BundleKind[]>
+>;
+
 /** Sections each kind must have, and may not have. */
 const checkSections = (bundle: Bundle): void => {
-  for (const needed of SECTIONS[bundle.kind]) {
-    if (bundle[needed] === undefined) refuse(needed, `expected the tensors of kind "${bundle.kind}", got none`);
+  const { kind } = bundle;
+  const own: readonly (keyof Bundle)[] = SECTIONS[kind];
+  for (const needed of own) {
+    if (bundle[needed] === undefined) refuse(needed, `expected the tensors of kind "${kind}", got none`);
+  }
+  for (const section of new Set(Object.values(SECTIONS).flat())) {
+    if (own.includes(section) || bundle[section] === undefined) continue;
+    refuse(section, `expected nothing of the sort in a bundle of kind "${kind}", got a section of another kind`);
+  }
+  for (const [section, kinds] of Object.entries(WITHOUT) as [keyof typeof WITHOUT, readonly BundleKind[]][]) {
+    if (!kinds.includes(kind) || bundle[section] === undefined) continue;
+    refuse(section, `expected none in a bundle of kind "${kind}", got one`);
   }
 };
 
