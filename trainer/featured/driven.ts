@@ -7,7 +7,7 @@ import { type DrivenParts, drivenModel, drivenSection } from './driven-parts.ts'
 import { averageRun, chooseSetting, fitMembers, type Member, runError, type Setting } from './ensemble.ts';
 import { fadingTimes, fitDeviation, fitLead } from './fading.ts';
 import type { DrivenRecord } from './free-run.ts';
-import { fitLinearStart, type LinearStart } from './linear-start.ts';
+import { fitLinearStart, type LinearStart, NO_FEATURES } from './linear-start.ts';
 import { sensorRange } from './sensor-range.ts';
 import { forgettingTicks, hiddenStarts } from './simulation-start.ts';
 
@@ -19,7 +19,7 @@ const HIDDEN_COUNTS = [0, 1, 2] as const;
 const MEMBERS = 5;
 const ITERATIONS = 40;
 /** Share of the signals' variance on held-out time that the linear simulation must explain. */
-const LEAST_EXPLAINED = 0.3;
+const LEAST_EXPLAINED = 0.6;
 
 /**
  * The driven candidate; null for a record without inputs that ever vary, a long or wide one, or one whose inputs do not explain the signals.
@@ -41,7 +41,9 @@ export function tryDriven(attempt: Attempt): Candidate | null {
   const range = sensorRange(learn);
   const starts = HIDDEN_COUNTS.map((count) => fitLinearStart(learn, count)).filter((start) => start !== null);
   if (!starts.some((start) => explains(start, record, learnTicks))) return null;
-  const { setting } = chooseSetting(record, learnTicks, starts, range);
+  const choice = chooseSetting(record, learnTicks, starts, range);
+  if (choice === null) return null;
+  const { setting } = choice;
   const members = membersOf(learn, setting, attempt.options.seed);
   const run = averageRun(members, record, range);
   const times = fadingTimes(around.horizon, learnTicks);
@@ -99,7 +101,7 @@ function membersOf(record: DrivenRecord, setting: Setting, seed: number): Member
 
 function explains(start: LinearStart, record: DrivenRecord, learnTo: number): boolean {
   const range = { low: record.signals.map(() => -4), high: record.signals.map(() => 4) };
-  const member = { ...start, features: { frequencies: new Float64Array(0), phases: new Float64Array(0) } };
+  const member = { ...start, features: NO_FEATURES };
   const sensor = { low: Float64Array.from(range.low), high: Float64Array.from(range.high) };
   const run = averageRun([member], record, sensor);
   return runError(run, record, learnTo) < (1 - LEAST_EXPLAINED) * variance(record, learnTo);

@@ -12,7 +12,7 @@ import {
   parameterLayout,
 } from './free-run.ts';
 import { minimise } from './levenberg-marquardt.ts';
-import type { LinearStart } from './linear-start.ts';
+import { type LinearStart, NO_FEATURES } from './linear-start.ts';
 
 /** What an ensemble is made with. */
 export interface Setting {
@@ -129,16 +129,19 @@ export function runError(run: readonly Float64Array[], record: DrivenRecord, fro
   return sum / count;
 }
 
-const FIRST_TRY: Omit<Setting, 'hiddenCount'> = { featureCount: 40, width: 3, penalty: 0.1 };
-const WIDTHS = [2, 5] as const;
-const PENALTIES = [0.01, 1] as const;
+/** Wide and heavily penalised: beyond what was learned, narrow features lead anywhere. */
+const FIRST_TRY: Omit<Setting, 'hiddenCount'> = { featureCount: 40, width: 8, penalty: 1 };
+const WIDTHS = [3, 5] as const;
+const PENALTIES = [0.1, 10] as const;
 const TRIAL_SEEDS = [101, 102] as const;
 const TRIAL_ITERATIONS = 15;
-/** A hidden state more is taken only for this gain in squared error. */
+/** Features are taken at all only for this gain on the best linear simulation … */
+const LEAST_GAIN = 0.1;
+/** … and a hidden state more only for this one, in squared error. */
 const HIDDEN_GAIN = 0.1;
 
 /**
- * Chooses settings by the averaged free run on held-out time.
+ * Chooses settings by the averaged free run on held-out time; null where features hardly gain on a linear simulation.
  *
  * shapes  starts by number of hidden states, rising; record.to the end of the held-out part, learnTo its beginning
  * units   standardised
@@ -151,7 +154,7 @@ export function chooseSetting(
   learnTo: number,
   starts: readonly LinearStart[],
   range: SensorRange,
-): { readonly setting: Setting; readonly start: LinearStart; readonly error: number } {
+): { readonly setting: Setting; readonly start: LinearStart; readonly error: number } | null {
   const learn = { ...record, to: learnTo };
   const attempt = (start: LinearStart, setting: Setting): Tried => {
     const members = fitMembers(learn, start, setting, TRIAL_SEEDS, TRIAL_ITERATIONS);
@@ -162,7 +165,11 @@ export function chooseSetting(
     const tried = attempt(start, { ...FIRST_TRY, hiddenCount: start.shape.hiddenCount });
     if (best === null || tried.error < best.error * (1 - HIDDEN_GAIN)) best = tried;
   }
-  let at = best as Tried;
+  const linear = starts.map((start) =>
+    runError(averageRun([{ ...start, features: NO_FEATURES }], record, range), record, learnTo),
+  );
+  if (best === null || !(best.error < Math.min(...linear) * (1 - LEAST_GAIN))) return null;
+  let at: Tried = best;
   for (const width of WIDTHS) {
     const tried = attempt(at.start, { ...(best as Tried).setting, width });
     if (tried.error < at.error) at = tried;

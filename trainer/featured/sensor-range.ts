@@ -7,10 +7,10 @@ import type { DrivenRecord } from './free-run.ts';
 
 /** Share of the range added where readings do not pile up. */
 const MARGIN = 0.5;
-/** Readings pile up where this share of them lies in the outermost hundredth of the range … */
-const PILED_SHARE = 0.02;
-/** … and that many times more than in the hundredth beside it. */
-const PILED_RATIO = 2;
+/** Readings pile up where this share of them lies in the outermost fiftieth of the range … */
+const PILED_SHARE = 0.05;
+/** … and that many times more than in the fiftieth beside it. */
+const PILED_RATIO = 3;
 
 /**
  * The range of each signal.
@@ -36,9 +36,9 @@ function upperEnd(read: Float64Array): number {
     low = Math.min(low, value);
     high = Math.max(high, value);
   }
-  const bin = (high - low) / 100;
-  const top = read.filter((value) => value > high - bin).length;
+  const bin = (high - low) / 50;
+  const top = read.filter((value) => value > high - bin).sort();
   const next = read.filter((value) => value <= high - bin && value > high - 2 * bin).length;
-  const isPiled = top >= PILED_SHARE * read.length && top >= PILED_RATIO * next;
-  return isPiled ? high : high + MARGIN * (high - low) + Number.EPSILON;
+  const isPiled = top.length >= PILED_SHARE * read.length && top.length >= PILED_RATIO * next;
+  return isPiled ? top[top.length >> 1] : high + MARGIN * (high - low) + Number.EPSILON;
 }

@@ -61,9 +61,9 @@ function regression(known: readonly Float64Array[], hidden: Float64Array): Float
  * cost    two runs
  */
 export function forgettingTicks(model: DrivenModel, record: DrivenRecord): number | null {
-  const { step, x } = createState(model).core as DrivenCore;
-  const above = x.map(() => APART);
-  const below = x.map(() => -APART);
+  const { step } = createState(model).core as DrivenCore;
+  const above = startedAt(model, APART, record);
+  const below = startedAt(model, -APART, record);
   const inputs = new Float64Array(record.inputs.length);
   let settled: number | null = null;
   const ticks = record.to - record.from;
@@ -76,4 +76,16 @@ export function forgettingTicks(model: DrivenModel, record: DrivenRecord): numbe
     else settled ??= n + 1;
   }
   return settled;
+}
+
+/** States of every member as a first reading of all signals at a level would set them. */
+function startedAt(model: DrivenModel, level: number, record: DrivenRecord): Float64Array {
+  const { signalCount: ny, channelCount: nc, hiddenCount, start } = model;
+  const known = [...record.signals.map(() => level), ...record.inputs.map((u) => u[record.from]), 1];
+  return Float64Array.from({ length: model.order }, (_, at) => {
+    const k = at % (ny + hiddenCount);
+    if (k < ny) return level;
+    const row = Math.floor(at / (ny + hiddenCount)) * hiddenCount + k - ny;
+    return known.reduce((sum, value, c) => sum + start[row * (nc + 1) + c] * value, 0);
+  });
 }
