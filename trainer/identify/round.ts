@@ -22,8 +22,14 @@ const WEIGHTS = [1, 0.5] as const;
 /** A round must gain this share of the squared error surely: it costs memory, and doubles what is noise in the last one. */
 const ROUND_GAIN = 0.02;
 const ROUND_CHANCE = 0.05;
+/** Where there is a pattern to be seen, as large a gain is believed without being sure. */
+const LARGE_GAIN = 0.15;
+/** Share of a signal's changes that a pattern must explain before a round may count its trend as a gain. */
+const LEAST_PATTERN = 0.1;
 /** Penalties that tell whether a round pays; the proper choice comes after. */
 const PENALTIES = [0.01, 0.1, 1] as const;
+/** Bytes of all signals' rounds together: the gateway's snapshot, bank included, must stay below MAX_SNAPSHOT_BYTES. */
+const MOST_ROUND_BYTES = 96 * 1024;
 /** Signals beyond these are not tried: the time is better spent on their map. */
 const MOST_SIGNALS = 32;
 
@@ -44,12 +50,18 @@ export function chooseRound(input: LearnInput, tickMs: number): Round | null {
   for (const ticks of rounds) {
     let gain = 0;
     const weight = Float64Array.from(signals, (i) => {
-      const plain = ownErrors(input, i, null, ticks);
-      const tried = WEIGHTS.map((w) => ({ w, ...ownErrors(input, i, { ticks, weight: Float64Array.of(w) }, ticks) }));
+      const hasPattern = patternShare(input, i, ticks) >= LEAST_PATTERN;
+      const plain = ownErrors(input, i, null, ticks, hasPattern);
+      const tried = WEIGHTS.map((w) => ({
+        w,
+        ...ownErrors(input, i, { ticks, weight: Float64Array.of(w) }, ticks, hasPattern),
+      }));
       const mean = (errors: readonly number[]): number => geometric(errors, plain.weights);
       const [first, second] = tried;
       const least = mean(second.errors) < mean(first.errors) ? second : first;
-      if (!gainsSurely(least.errors, plain.errors, ROUND_GAIN, plain.weights, ROUND_CHANCE)) return 0;
+      const isSure = gainsSurely(least.errors, plain.errors, ROUND_GAIN, plain.weights, ROUND_CHANCE);
+      const isLarge = hasPattern && mean(least.errors) < mean(plain.errors) * (1 - LARGE_GAIN);
+      if (!isSure && !isLarge) return 0;
       gain += Math.log(mean(plain.errors) / mean(least.errors));
       return least.w;
     });
@@ -67,8 +79,35 @@ function roundsWorthTrying(input: LearnInput, tickMs: number): number[] {
       ticks > 1 &&
       ticks >= horizon &&
       ticks <= MAX_ROUND_TICKS &&
+      8 * (ticks + 1) * input.signalCount <= MOST_ROUND_BYTES &&
       learnTicks >= LEAST_ROUNDS * ticks,
   );
+}
+
+/**
+ * Share of the variance of a signal's changes from tick to tick that their means by phase explain, less what as many means of
+ * noise would. Changes, since a trend has none of it.
+ */
+function patternShare({ filled, learnTicks }: LearnInput, signal: number, ticks: number): number {
+  const z = filled.values[signal];
+  const sums = new Float64Array(ticks);
+  const counts = new Float64Array(ticks);
+  let mean = 0;
+  for (let t = 1; t < learnTicks; t++) {
+    sums[t % ticks] += z[t] - z[t - 1];
+    counts[t % ticks]++;
+    mean += (z[t] - z[t - 1]) / (learnTicks - 1);
+  }
+  let total = 0;
+  let left = 0;
+  for (let t = 1; t < learnTicks; t++) {
+    const change = z[t] - z[t - 1];
+    const phase = sums[t % ticks] / counts[t % ticks];
+    total += (change - mean) * (change - mean);
+    left += (change - phase) * (change - phase);
+  }
+  // R² adjusted for the number of means (Theil 1961).
+  return total > 0 ? 1 - left / Math.max(1, learnTicks - 1 - ticks) / (total / (learnTicks - 2)) : 0;
 }
 
 /** Errors by fold of one signal's own map on what is left of it, from the origins after `skip` ticks. */
@@ -77,6 +116,7 @@ function ownErrors(
   signal: number,
   round: Round | null,
   skip: number,
+  hasPattern: boolean,
 ): { readonly errors: number[]; readonly weights: number[] } {
   const { filled, horizon, learnTicks, calibrateTicks, periodTicks } = input;
   const wish = { periodTicks, otherPeriods: [], horizon, learnTicks, channelCount: 1 };
@@ -96,8 +136,11 @@ function ownErrors(
   });
   const folds: Fold[] = [];
   for (let g = Math.max(1, Math.min(3, groups.length - 2)); g < groups.length; g++) {
-    // About its means too: a record that only rises would otherwise take its last round's rise for a pattern.
-    folds.push({ learn: aboutMeans(addMoments(groups.slice(0, g))), judge: withoutTrend(groups[g]) });
+    // Without a pattern about its means too: a record that only rises would otherwise take its last round's rise for one.
+    folds.push({
+      learn: aboutMeans(addMoments(groups.slice(0, g))),
+      judge: hasPattern ? groups[g] : withoutTrend(groups[g]),
+    });
   }
   const weights = foldWeights(folds);
   const trial: OwnTrial = { folds, weights, layout: { ...layout, steps: trials.steps.length }, groups: trials.groups };
