@@ -4,7 +4,15 @@
  */
 import type { Attempt, Candidate } from '../kinds/candidate.ts';
 import { type DrivenParts, drivenModel, drivenSection } from './driven-parts.ts';
-import { averageRun, chooseSetting, fitMembers, type Member, runError, type Setting } from './ensemble.ts';
+import {
+  averageRun,
+  chooseSetting,
+  fitMembers,
+  type Member,
+  runError,
+  type SensorRange,
+  type Setting,
+} from './ensemble.ts';
 import { fadingTimes, fitDeviation, fitLead } from './fading.ts';
 import type { DrivenRecord } from './free-run.ts';
 import { fitLinearStart, type LinearStart, NO_FEATURES } from './linear-start.ts';
@@ -41,19 +49,36 @@ export function tryDriven(attempt: Attempt): Candidate | null {
   const range = sensorRange(learn);
   const starts = HIDDEN_COUNTS.map((count) => fitLinearStart(learn, count)).filter((start) => start !== null);
   if (!starts.some((start) => explains(start, record, learnTicks))) return null;
-  const choice = chooseSetting(record, learnTicks, starts, range);
-  if (choice === null) return null;
-  const { setting } = choice;
+  // A hidden state too many may never forget where it began; fewer are tried then.
+  for (let left = starts; left.length > 0; ) {
+    const choice = chooseSetting(record, learnTicks, left, range);
+    if (choice === null) return null;
+    const parts = learnedParts(attempt, choice.setting, record, range);
+    if (parts !== null) return candidateOf(attempt, parts);
+    left = left.filter(({ shape }) => shape.hiddenCount < choice.setting.hiddenCount);
+  }
+  return null;
+}
+
+/** Members from the learning part, and how their deviations fade, from the calibration part too. */
+function learnedParts(
+  attempt: Attempt,
+  setting: Setting,
+  record: DrivenRecord,
+  range: SensorRange,
+): DrivenParts | null {
+  const { learnTicks } = attempt.prepared;
+  const { horizon } = attempt.around;
+  const learn = { ...record, to: learnTicks };
   const members = membersOf(learn, setting, attempt.options.seed);
   const run = averageRun(members, record, range);
-  const times = fadingTimes(around.horizon, learnTicks);
-  const parts = partsOf(attempt, setting, members, learn, {
+  const times = fadingTimes(horizon, learnTicks);
+  return partsOf(attempt, setting, members, learn, {
     range,
     times,
-    deviationGain: joined(record.signals.map((y, i) => fitDeviation(difference(y, run[i]), times, around.horizon))),
-    inputGain: joined(record.inputs.map((u) => fitLead(u.subarray(0, learnTicks), times, around.horizon))),
+    deviationGain: joined(record.signals.map((y, i) => fitDeviation(difference(y, run[i]), times, horizon))),
+    inputGain: joined(record.inputs.map((u) => fitLead(u.subarray(0, learnTicks), times, horizon))),
   });
-  return parts === null ? null : candidateOf(attempt, parts);
 }
 
 type Fades = Pick<DrivenParts, 'range' | 'times' | 'deviationGain' | 'inputGain'>;
