@@ -5,8 +5,10 @@
 import { randomBytes } from 'node:crypto';
 import { join } from 'node:path';
 import {
+  type ForecastMessage,
   type ForecastsMessage,
   type HealthMessage,
+  parseForecastMessage,
   parseForecastsMessage,
   parseHealthMessage,
   parseTopic,
@@ -51,6 +53,8 @@ export interface FleetOptions {
   /** Every how many-th segment message is sent a second time, as a broker may; 0 for none. */
   readonly doubleEvery: number;
   readonly onForecasts: (site: string, message: ForecastsMessage) => void;
+  /** Site and signal whose own forecast messages are listened to as well; none unless given. */
+  readonly closely?: { readonly site: string; readonly signal: string; readonly hear: (one: ForecastMessage) => void };
   readonly onUnexpectedEnd: (name: string, detail: string) => void;
 }
 
@@ -97,13 +101,20 @@ export class Fleet {
     const fleet = new Fleet(options, await startBroker());
     await fleet.connection.firstConnect(CONNECT_TIMEOUT_MS);
     const { forecastAll, health, segments } = topicsOf(ROOT, '+');
-    await fleet.connection.subscribe([forecastAll, health, segments], 1);
+    const { closely } = options;
+    const one = closely === undefined ? [] : [topicsOf(ROOT, closely.site).forecast(closely.signal)];
+    await fleet.connection.subscribe([forecastAll, health, segments, ...one], 1);
     return fleet;
   }
 
   /** Publishes one reading. */
   publish(topic: string, payload: string): Promise<void> {
     return this.connection.publish({ topic, payload, qos: 1, retain: false });
+  }
+
+  /** Publishes what whoever comes later must find as well, such as a plan. */
+  publishRetained(topic: string, payload: string): Promise<void> {
+    return this.connection.publish({ topic, payload, qos: 1, retain: true });
   }
 
   /** The desk's data folder. */
@@ -216,6 +227,7 @@ export class Fleet {
     if (parsed === null) return;
     try {
       if (parsed.kind === 'forecastAll') this.options.onForecasts(parsed.site, parseForecastsMessage(payload));
+      else if (parsed.kind === 'forecast') this.options.closely?.hear(parseForecastMessage(payload));
       else if (parsed.kind === 'health') {
         this.health.set(parsed.site, parseHealthMessage(payload));
       } else if (parsed.kind === 'segments') this.segments.hear(topic, payload);

@@ -24,6 +24,9 @@ export function payloadOf(style: PayloadStyle, value: number, timeMs: number): s
 /** Topic on which a channel's readings are published. */
 export const readingTopic = (site: string, channel: string): string => `plant/${site}/${channel}`;
 
+/** Topic on which the plan of an input is published. */
+export const planTopic = (site: string, channel: string): string => `plan/${site}/${channel}`;
+
 /** Payload style of a demo site. */
 export const styleOf = (site: DemoSite): PayloadStyle => (site.kind === 'wet-well' ? 'iso' : 'milliseconds');
 
@@ -39,6 +42,7 @@ export interface SiteChannel {
   readonly range: readonly [number, number] | null;
   readonly limits: { readonly high?: number; readonly highHigh?: number; readonly low?: number };
   readonly aggregate: 'last' | 'sum';
+  readonly isPlanned?: boolean;
   readonly column: string;
 }
 
@@ -95,7 +99,10 @@ export function siteText(description: SiteDescription): string {
     root: 'stillwell',
     residualBytesPerDay: 1_000_000,
     signals: of('signal').map(channel),
-    inputs: of('input').map((one) => ({ ...channel(one), planTopic: null })),
+    inputs: of('input').map((one) => ({
+      ...channel(one),
+      planTopic: one.isPlanned ? planTopic(description.name, one.name) : null,
+    })),
     calendar: { timeOfDay: true, dayOfWeek: false, holidays: [] },
     exclude: [],
   });

@@ -45,6 +45,8 @@ export class SiteRun {
   readonly plant: Plant;
   readonly telemetry: Telemetry;
   readonly scorer: Scorer;
+  /** What the sensors said on the last day before play. */
+  lastDay: readonly Float64Array[] = [];
   /** What the sensors said at each tick of play, late or not; NaN where silent. */
   readonly said: Float64Array[] = [];
   siteFile = '';
@@ -52,9 +54,9 @@ export class SiteRun {
   readonly bundles: SealedBundle[] = [];
   /** Under which label an origin is scored. */
   labelOf: (tick: number, digest: string) => string = () => 'play';
-  /** Called as each tick is sent, and as each forecast comes in (after it was kept). */
-  onTick: (tick: number, said: Float64Array) => void = () => {};
-  onForecast: (origin: number, digest: string) => void = () => {};
+  /** Called before each tick is sent, and as each forecast comes in (after it was kept). */
+  readonly tickListeners: ((tick: number, said: Float64Array) => void)[] = [];
+  readonly forecastListeners: ((origin: number, digest: string) => void)[] = [];
   play: SitePlay | null = null;
   private readonly alarms: { tick: number; ring: () => void }[] = [];
   private readonly plan: SitePlan;
@@ -106,7 +108,8 @@ export class SiteRun {
     this.siteFile = join(folder, 'site.yaml');
     writeFileSync(this.siteFile, siteText(this.description));
     const scans = this.past();
-    for (const row of scans.rows.slice(-this.perDay)) this.scorer.addReadings(row);
+    this.lastDay = scans.rows.slice(-this.perDay);
+    for (const row of this.lastDay) this.scorer.addReadings(row);
     this.historyFiles = writeHistory(folder, this.plan.site, this.plan.habit, scans, this.plan.seed);
   }
 
@@ -122,7 +125,7 @@ export class SiteRun {
       onSaid: (tick, said) => {
         this.said.push(said);
         this.scorer.addReadings(said);
-        this.onTick(tick, said);
+        for (const listener of this.tickListeners) listener(tick, said);
         for (const alarm of this.alarms) if (alarm.tick === tick) alarm.ring();
       },
     });
@@ -153,7 +156,7 @@ export class SiteRun {
     }
     const digest = Buffer.from(message.bundle).toString('hex');
     this.scorer.addForecast(origin, this.labelOf(origin, digest), path);
-    this.onForecast(origin, digest);
+    for (const listener of this.forecastListeners) listener(origin, digest);
   }
 
   private next(tick: number) {

@@ -3,9 +3,11 @@
  * thermostat's dead-band, doors that open by the day's pattern, weather outside. Energy in kJ, temperatures in °C,
  * explicit steps of a few seconds, so that the stored energy and the flows add up to rounding.
  *
- * channels  room °C, suction °C (evaporating temperature), power kW, outdoor °C
+ * channels  room °C, suction °C (evaporating temperature), power kW, outdoor °C and, where defrosts are commanded, the
+ *           command, 0 or 1
  */
 import type { Random } from '../random.ts';
+import type { DefrostDesign, DefrostTimes } from './defrost.ts';
 import { doorwayHeat, humidityRatio } from './moist-air.ts';
 import { dayOfWeek, hourOfDay, type Plant } from './plant.ts';
 import { type Climate, startWeather, stepWeather } from './weather.ts';
@@ -35,8 +37,8 @@ export interface ColdStoreDesign {
   readonly carnotShare: number;
   readonly condenserRise: number;
   readonly door: Door;
-  /** Local hours at which an electric defrost begins, its minutes and kW; none where it thaws off by itself. */
-  readonly defrost: { readonly hours: readonly number[]; readonly minutes: number; readonly power: number };
+  /** Electric defrosts; null where frost thaws off by itself while the compressor rests. */
+  readonly defrost: DefrostDesign | null;
   readonly climate: Climate;
 }
 
@@ -73,7 +75,7 @@ export interface ColdStoreLedger {
 
 /** The store in motion. */
 export class ColdStore implements Plant {
-  readonly values = new Float64Array(4);
+  readonly values: Float64Array;
   readonly ledger: ColdStoreLedger = { wall: 0, doors: 0, fans: 0, defrost: 0, removed: 0, compressor: 0 };
   room: number;
   productTemperature: number;
@@ -81,13 +83,17 @@ export class ColdStore implements Plant {
   cooling = false;
   private readonly design: ColdStoreDesign;
   private readonly random: Random;
+  private readonly defrosts: DefrostTimes | null;
   private readonly weather;
   private worn = 0;
   private doorOpenFor = 0;
 
-  constructor(design: ColdStoreDesign, random: Random) {
+  /** `defrosts`: when the heaters are commanded on; null where there are none. */
+  constructor(design: ColdStoreDesign, random: Random, defrosts: DefrostTimes | null) {
     this.design = design;
     this.random = random;
+    this.defrosts = defrosts;
+    this.values = new Float64Array(defrosts === null ? 4 : 5);
     this.room = design.setPoint;
     this.productTemperature = design.setPoint;
     this.coilTemperature = design.setPoint - 3;
@@ -120,13 +126,13 @@ export class ColdStore implements Plant {
   private advance(nowMs: number, dt: number): void {
     const { design, ledger, values } = this;
     const outdoor = stepWeather(design.climate, this.weather, this.random, nowMs, dt, design.utcOffsetHours);
-    const thawing = this.thawing(nowMs);
+    const thawing = this.defrosts?.isOn(nowMs) ?? false;
     this.thermostat(thawing);
 
     const wall = design.wall * (outdoor - this.room);
     const doors = this.doorHeat(nowMs, dt, outdoor);
     const fans = thawing ? 0 : design.fans * (this.cooling ? 1 : design.idleFanShare);
-    const heater = thawing ? design.defrost.power : 0;
+    const heater = thawing ? (design.defrost?.power ?? 0) : 0;
     const fromProduct = design.product * (this.productTemperature - this.room);
     // Fans off: the coil meets the room by free convection alone, about a tenth (common practice).
     const toCoil = design.coil * (thawing ? 0.1 : this.cooling ? 1 : 0.35) * (this.room - this.coilTemperature);
@@ -146,6 +152,7 @@ export class ColdStore implements Plant {
     values[1] = suction;
     values[2] = duty.power + fans + heater;
     values[3] = outdoor;
+    if (this.defrosts !== null) values[4] = thawing ? 1 : 0;
   }
 
   private thermostat(thawing: boolean): void {
@@ -153,12 +160,6 @@ export class ColdStore implements Plant {
     if (thawing) this.cooling = false;
     else if (this.room >= setPoint + deadBand / 2) this.cooling = true;
     else if (this.room <= setPoint - deadBand / 2) this.cooling = false;
-  }
-
-  private thawing(nowMs: number): boolean {
-    const hour = hourOfDay(nowMs, this.design.utcOffsetHours);
-    const { hours, minutes } = this.design.defrost;
-    return hours.some((start) => hour >= start && hour < start + minutes / 60);
   }
 
   /** kW through the doorway now: fully while it stands open, and the worn seal's share all the time. */

@@ -27,6 +27,8 @@ export interface DemoChannel {
   readonly noise: number;
   readonly limits: { readonly high?: number; readonly highHigh?: number; readonly low?: number };
   readonly aggregate: 'last' | 'sum';
+  /** Whether somebody plans it and says so ahead. */
+  readonly isPlanned?: boolean;
 }
 
 const MINUTE = 60_000;
@@ -51,9 +53,9 @@ const wellChannels = (high: number, highHigh: number, hasGauge: boolean): readon
   return hasGauge ? [...channels, gauge] : channels;
 };
 
-const storeChannels = (high: number, highHigh: number, low: number): readonly DemoChannel[] => {
+const storeChannels = (high: number, highHigh: number, low: number, hasDefrosts: boolean): readonly DemoChannel[] => {
   const base = { role: 'signal', limits: {}, aggregate: 'last' } as const;
-  return [
+  const channels: DemoChannel[] = [
     {
       ...base,
       name: 'room',
@@ -67,6 +69,17 @@ const storeChannels = (high: number, highHigh: number, low: number): readonly De
     { ...base, name: 'power', unit: 'kW', resolution: 0.05, range: [0, 80], noise: 0.06 },
     { ...base, role: 'input', name: 'outdoor', unit: 'Cel', resolution: 0.1, range: [-40, 50], noise: 0.08 },
   ];
+  const command: DemoChannel = {
+    ...base,
+    role: 'input',
+    name: 'defrost',
+    unit: '1',
+    resolution: 1,
+    range: [0, 1],
+    noise: 0,
+    isPlanned: true,
+  };
+  return hasDefrosts ? [...channels, command] : channels;
 };
 
 const well = (
@@ -94,11 +107,11 @@ const store = (
   // A zone without clock changes, one hour ahead: local times in its logs are unambiguous but not UTC.
   timeZone: 'Africa/Algiers',
   horizon,
-  channels: storeChannels(...limits),
+  channels: storeChannels(...limits, design.defrost !== null),
   design: { ...design, tickMs: tickMinutes * MINUTE, utcOffsetHours: 1 },
 });
 
-/** Wells: one with a rain gauge, a small quick one, a large slow one. Stores: chilled, frozen with defrosts, fruit. */
+/** Wells: one with a rain gauge, a small quick one, a large slow one. Stores: chilled, frozen with planned defrosts, fruit. */
 export const DEMO_SITES: readonly DemoSite[] = [
   well(
     'quennadale',
@@ -181,7 +194,7 @@ export const DEMO_SITES: readonly DemoSite[] = [
       carnotShare: 0.45,
       condenserRise: 13,
       door: { area: 5, height: 2.4, openingsPerHour: 16, secondsOpen: 35, leak: 0.11 },
-      defrost: { hours: [], minutes: 0, power: 0 },
+      defrost: null,
       climate: { yearMean: 10, yearSwing: 8, daySwing: 3.6, fronts: 2.4, relativeHumidity: 0.74 },
     },
     [5, 8, -1],
@@ -207,7 +220,15 @@ export const DEMO_SITES: readonly DemoSite[] = [
       carnotShare: 0.43,
       condenserRise: 14,
       door: { area: 4, height: 2.4, openingsPerHour: 9, secondsOpen: 25, leak: 0.05 },
-      defrost: { hours: [1, 13], minutes: 20, power: 6 },
+      defrost: {
+        windows: [
+          [0, 7],
+          [9, 15],
+          [17, 23],
+        ],
+        minutes: 20,
+        power: 10,
+      },
       climate: { yearMean: 8, yearSwing: 9, daySwing: 3, fronts: 2.8, relativeHumidity: 0.8 },
     },
     [-16, -12, -25],
@@ -233,7 +254,7 @@ export const DEMO_SITES: readonly DemoSite[] = [
       carnotShare: 0.47,
       condenserRise: 12,
       door: { area: 6, height: 2.8, openingsPerHour: 10, secondsOpen: 60, leak: 0.08 },
-      defrost: { hours: [], minutes: 0, power: 0 },
+      defrost: null,
       climate: { yearMean: 12, yearSwing: 7, daySwing: 4.4, fronts: 2, relativeHumidity: 0.68 },
     },
     [9, 12, 2],

@@ -10,7 +10,8 @@ import { formatColumns } from '../progress.ts';
 import { RIVALS, type Score } from '../scores.ts';
 import type { SegmentCounts } from '../segment-watch.ts';
 import type { SiteRun } from '../site-run.ts';
-import { STAND_IN, type StandIn } from '../stand-in.ts';
+import type { StandIn } from '../stand-in.ts';
+import { type Defrosts, planLine, planOutcome, planVerdicts, WRONG_PLAN } from './season-defrosts.ts';
 import { ROUGH, segmentTicks, WORN_SITE } from './season-plan.ts';
 import type { StoryContext, StoryResult } from './story.ts';
 
@@ -22,7 +23,9 @@ const COVERAGE = [0.82, 0.97] as const;
 const MAX_BITS = 8;
 const SETTLE_SECONDS = 120;
 /** Stretches scored, in order. */
-const LABELS = ['as learned', 'worn', 'refitted'] as const;
+const LABELS = ['as learned', WRONG_PLAN, 'worn', 'refitted'] as const;
+/** Label under which the old bundle of the worn site is scored beside the new one. */
+export const STAND_IN = 'old bundle';
 
 interface Inputs {
   readonly context: StoryContext;
@@ -30,6 +33,7 @@ interface Inputs {
   readonly sites: readonly SiteRun[];
   readonly worn: SiteRun;
   readonly standIn: StandIn;
+  readonly defrosts: Defrosts;
 }
 
 interface SiteOutcome {
@@ -43,7 +47,7 @@ interface SiteOutcome {
 
 /** Waits for the last segments, compares and judges. */
 export async function gatherOutcome(inputs: Inputs): Promise<Omit<StoryResult, 'linger'>> {
-  const { context, fleet, sites, worn, standIn } = inputs;
+  const { context, fleet, sites, worn, standIn, defrosts } = inputs;
   context.narrator.live('waiting for the last segments to be decoded');
   for (const site of sites) await fleet.untilArchived(site.name, SETTLE_SECONDS);
   const status = await fleet.deskStatus();
@@ -51,9 +55,11 @@ export async function gatherOutcome(inputs: Inputs): Promise<Omit<StoryResult, '
   for (const site of sites) outcomes.push(await outcomeOf(site, fleet, status));
   const before = standIn.scorer.score(STAND_IN, worn.deviations);
   const after = worn.scorer.score('refitted', worn.deviations);
+  const plan = planOutcome(defrosts);
   const verdicts = [
     ...outcomes.flatMap(siteVerdicts),
     ...refitVerdicts(before, after),
+    ...planVerdicts(plan),
     // Without one sent twice, the promise that doubles are kept once would be kept by doing nothing.
     expectBetween(
       'fleet',
@@ -64,9 +70,9 @@ export async function gatherOutcome(inputs: Inputs): Promise<Omit<StoryResult, '
     expectExactly('fleet', 'every message of a gateway can be read', fleet.unreadable.length, 0),
   ];
   return {
-    report: [skillTable(outcomes), segmentTable(outcomes), refitLine(before, after)].join('\n\n'),
+    report: [skillTable(outcomes), segmentTable(outcomes), refitLine(before, after), planLine(plan)].join('\n\n'),
     verdicts,
-    figures: { sites: outcomes.map(figuresOf), refit: { before, after }, unreadable: fleet.unreadable },
+    figures: { sites: outcomes.map(figuresOf), refit: { before, after }, plan, unreadable: fleet.unreadable },
     lookAt: lookAt(fleet, sites),
   };
 }

@@ -33,6 +33,13 @@ export const POWER_CUT_SITE = 'quennadale';
 /** The site whose link is cut. */
 export const LINK_CUT_SITE = 'ellerquint';
 
+/** The site whose defrosts are planned, the signal whose forecasts are asked about it, and how late a wrong plan is. */
+export const PLANNED_SITE = 'tessenby';
+/** The planned input and the signal that says what came of it. */
+export const PLANNED = { input: 'defrost', signal: 'room' } as const;
+/** A wrong plan tells the runs this much later than they come. */
+export const PLAN_LATE_MS = 76 * 60_000;
+
 /** Days from the start of play. */
 export interface Timetable {
   /** Filters are warm from here on; forecasts count. */
@@ -44,6 +51,9 @@ export interface Timetable {
   /** The plant has worn, and the new bundle is rolled. */
   readonly worn: number;
   readonly refitted: number;
+  /** The plan of the defrosts goes wrong, and is put right. */
+  readonly planWrong: number;
+  readonly planRight: number;
   readonly end: number;
 }
 
@@ -60,6 +70,8 @@ export function timetableOf(days: number): Timetable {
     deskBack: at(0.2),
     worn: at(0.3),
     refitted: at(0.7),
+    planWrong: at(0.6),
+    planRight: at(0.9),
     end: days,
   };
 }

@@ -6,12 +6,14 @@
 import { mkdirSync } from 'node:fs';
 import { join } from 'node:path';
 import { Fleet, type GatewayStart } from '../fleet.ts';
+import type { PlanWatch } from '../plan-watch.ts';
 import { DEMO_SITES } from '../plants/sites.ts';
 import { inParallel } from '../processes.ts';
 import { SiteRun } from '../site-run.ts';
 import { StandIn } from '../stand-in.ts';
 import { Workshop } from '../workshop.ts';
-import { gatherOutcome } from './season-outcome.ts';
+import { isWrongPlan, planDefrosts, WRONG_PLAN, watchPlan } from './season-defrosts.ts';
+import { gatherOutcome, STAND_IN } from './season-outcome.ts';
 import {
   DEFAULT_DAYS,
   DOUBLE_EVERY,
@@ -19,6 +21,8 @@ import {
   HABITS,
   HISTORY_DAYS,
   LINK_CUT_SITE,
+  PLANNED,
+  PLANNED_SITE,
   PLAY_MS,
   POWER_CUT_SITE,
   ROUGH,
@@ -57,23 +61,27 @@ async function play(context: StoryContext): Promise<StoryResult> {
   const timetable = timetableOf(context.days ?? DEFAULT_DAYS);
   const sites = makeSites(context);
   narrator.say(`${sites.length} sites, ${HISTORY_DAYS} days of past each, ${timetable.end} days to play`);
-  const fleet = await openFleet(context, sites);
+  const planned = siteNamed(sites, PLANNED_SITE);
+  const watch = watchPlan();
+  const fleet = await openFleet(context, sites, watch, planned);
   const workshop = new Workshop(join(folder, 'workshop'), fleet.processes);
   const season: Season = { context, timetable, sites, fleet, workshop, worn: siteNamed(sites, WORN_SITE) };
   await fitAll(season);
   await startAll(season);
+  const defrosts = planDefrosts(planned, context.seed, timetable, fleet, watch);
   const incidents = scheduleIncidents(season);
 
   await playTo(season, timetable.worn, 'as learned');
   season.worn.plant.wear(WEAR);
   narrator.say(`${WORN_SITE}: the pumps have worn and lift less; play goes on, the desk collects the residuals`);
   await playTo(season, timetable.refitted, 'worn');
-  const standIn = new StandIn(season.worn);
+  const old = season.worn.serving;
+  const standIn = new StandIn(season.worn, old, (_, digest) => (digest === old.digest ? null : STAND_IN));
   await refitWorn(season);
   await rollWorn(season);
   await playTo(season, timetable.end, 'refitted');
   await Promise.all(incidents);
-  const result = await gatherOutcome({ ...season, standIn });
+  const result = await gatherOutcome({ ...season, standIn, defrosts });
   return { ...result, linger: (signal) => linger(season, signal) };
 }
 
@@ -99,7 +107,12 @@ function siteNamed(sites: readonly SiteRun[], name: string): SiteRun {
   return found;
 }
 
-async function openFleet(context: StoryContext, sites: readonly SiteRun[]): Promise<Fleet> {
+async function openFleet(
+  context: StoryContext,
+  sites: readonly SiteRun[],
+  watch: PlanWatch,
+  planned: SiteRun,
+): Promise<Fleet> {
   const logs = join(context.folder, 'logs');
   mkdirSync(logs, { recursive: true });
   const byName = new Map(sites.map((site) => [site.name, site]));
@@ -107,6 +120,11 @@ async function openFleet(context: StoryContext, sites: readonly SiteRun[]): Prom
     folder: context.folder,
     doubleEvery: DOUBLE_EVERY,
     onForecasts: (name, message) => byName.get(name)?.hear(message),
+    closely: {
+      site: planned.name,
+      signal: PLANNED.signal,
+      hear: (one) => watch.hear(one, planned.labelOf(Date.parse(one.origin) / planned.tickMs, one.bundle ?? '')),
+    },
     onUnexpectedEnd: (name, detail) => {
       for (const site of sites) site.play?.fail(new Error(`${name} ended by itself: ${detail}`));
     },
@@ -164,6 +182,7 @@ function labelsOf(site: SiteRun, timetable: Timetable): (tick: number, digest: s
   return (tick, digest) => {
     const day = (tick - site.playTick) / site.perDay;
     if (day < timetable.learned) return 'warming up';
+    if (site.name === PLANNED_SITE && isWrongPlan(site, timetable, tick)) return WRONG_PLAN;
     if (site.name !== WORN_SITE || day < timetable.worn) return 'as learned';
     return digest === site.bundles[0].digest ? 'worn' : 'refitted';
   };

@@ -5,9 +5,11 @@ import { faultsOf, HABITS, timetableOf } from '../../../demo-fleet/stories/seaso
 describe('the season', () => {
   it('keeps its order however many days it is given', () => {
     for (const days of [4, 5, 12, 30]) {
-      const { learned, powerCut, linkCut, deskAway, deskBack, worn, refitted, end } = timetableOf(days);
+      const { learned, powerCut, linkCut, deskAway, deskBack, worn, refitted, planWrong, planRight, end } =
+        timetableOf(days);
       const order = [0, learned, powerCut, linkCut, deskAway, deskBack, worn, refitted, end];
       expect(order).toEqual([...order].sort((a, b) => a - b));
+      expect([learned, planWrong, planRight, end].every((day, k, all) => k === 0 || day > all[k - 1])).toBe(true);
       expect(end).toBe(days);
       // Long enough to be judged on: no stretch shorter than half a day.
       for (const length of [worn - learned, refitted - worn, end - refitted])
