@@ -176,6 +176,11 @@ function limitsOf({ y, columns, origins }: Gathered, q: number, horizon: number)
   return squares.map((sum) => LIMIT_SD * Math.sqrt(sum / Math.max(1, origins * horizon)));
 }
 
+/** Weight of a step, counted from 0: the curves are to keep the first steps as well as the last, whose errors are larger. */
+function root(h: number): number {
+  return Math.sqrt(h + 1);
+}
+
 /** A few curves over the horizon, shared by all signals. */
 function shrink(
   map: Float64Array,
@@ -193,17 +198,22 @@ function shrink(
       own.set(said.subarray(row * columns + k * horizon, row * columns + (k + 1) * horizon), row * horizon);
     }
     const one = multiplyTransposed(own, own, horizon, origins, horizon);
-    for (let at = 0; at < one.length; at++) gram[at] += one[at];
+    for (let at = 0; at < one.length; at++) gram[at] += one[at] / (root(Math.floor(at / horizon)) * root(at % horizon));
   }
   for (let g = 0; g < horizon; g++) for (let h = 0; h < g; h++) gram[h * horizon + g] = gram[g * horizon + h];
   const { vectors } = symmetricEigen(gram, horizon);
   const basis = new Float64Array(horizon * curves);
-  for (let h = 0; h < horizon; h++) for (let c = 0; c < curves; c++) basis[h * curves + c] = vectors[h * horizon + c];
+  const across = new Float64Array(horizon * curves);
+  for (let h = 0; h < horizon; h++)
+    for (let c = 0; c < curves; c++) {
+      basis[h * curves + c] = vectors[h * horizon + c] * root(h);
+      across[h * curves + c] = vectors[h * horizon + c] / root(h);
+    }
   const byColumn = transpose(map, width, columns);
   const readout = new Float64Array(q * curves * width);
   for (let k = 0; k < q; k++) {
     const rows = byColumn.subarray(k * horizon * width, (k + 1) * horizon * width);
-    readout.set(multiplyTransposed(basis, rows, curves, horizon, width), k * curves * width);
+    readout.set(multiplyTransposed(across, rows, curves, horizon, width), k * curves * width);
   }
   return { readout, basis };
 }
