@@ -36,6 +36,7 @@ export type { SwitchedCorrection, SwitchedSection } from './switched-section.ts'
 export {
   createSwitchedCore,
   deriveSwitched,
+  FLOOD_MEAN,
   LEAST_DOUBT,
   MOST_DOUBT,
   SWITCHED_BEND,
