@@ -187,6 +187,20 @@ const checkUnitScales = (scales: Uint8Array): void => {
   }
 };
 
+const checkGuard = ({ guard }: Bundle, signals: number): void => {
+  const { stuck, rests, stuckActs } = guard;
+  if (stuck === undefined && rests === undefined && stuckActs === undefined) return;
+  for (const [name, list] of Object.entries({ stuck, rests })) {
+    if (list?.length !== signals)
+      refuse(
+        `guard.${name}`,
+        `expected ${signals} entries, one a signal, got ${list === undefined ? 'none' : list.length}`,
+      );
+  }
+  const short = (stuck ?? []).indexOf(1);
+  if (short >= 0) refuse(`guard.stuck[${short}]`, 'expected 0 or at least 2, got 1');
+};
+
 const checkSeasonal = (bundle: Bundle, signals: number): void => {
   const { periodTicks, table } = bundle.seasonal;
   const most = Math.max(1, periodTicks);
@@ -248,6 +262,7 @@ export const checkBundle = (bundle: Bundle): void => {
   if (bundle.driven !== undefined) checkDriven(bundle.driven, around);
   if (bundle.response !== undefined) checkResponse(bundle, bundle.response, signals);
   if (bundle.round !== undefined) checkRound(bundle, bundle.round, signals);
+  checkGuard(bundle, signals);
   checkSeasonal(bundle, signals);
   checkRadius(bundle, signals);
   checkJudge(bundle, signals);

@@ -182,6 +182,12 @@ export interface Bundle {
     readonly maxTicks: number;
     /** A second reading as far off as the first is taken for a jump and folded in; absent: it is passed over too. */
     readonly confirmsJumps?: true | undefined;
+    /** (ny) a signal stands still from the reading on that ends a run of so many alike; 0: never. Absent: never. */
+    readonly stuck?: readonly number[] | undefined;
+    /** (ny) values, in `unit`, that a signal may repeat for ever; there with `stuck`. */
+    readonly rests?: readonly (readonly number[])[] | undefined;
+    /** Readings of a signal that stands still count as missing; absent: it is only told. */
+    readonly stuckActs?: true | undefined;
   };
   readonly warmupTicks: number;
   /** Gates of trial and probation: largest accepted ratio of squared error to the serving bundle's, and ticks watched. */

@@ -117,13 +117,28 @@ function bundleWithoutProbe(parts: Composition): Bundle {
       ...(calibration.crossingMap === undefined ? {} : { crossing: Array.from(calibration.crossingMap) }),
       ...(calibration.crossingFresh === undefined ? {} : { crossingFresh: calibration.crossingFresh }),
     },
-    guard: { rejectSd: calibration.rejectSd, maxTicks: calibration.rejectMaxTicks, confirmsJumps: true },
+    guard: guardOf(calibration),
     warmupTicks: around.warmupTicks,
     gates: { worseRatio: WORSE_RATIO, trialTicks: gateTicks, probationTicks: gateTicks },
     provenance: provenanceOf(parts, series),
     judge: parts.judge,
     // Float64 take nine bytes each whatever they are, but whole numbers less.
     probe: { seed: parts.options.seed, ticks: PROBE_TICKS, digest: EMPTY_DIGEST, last: new Array(horizon).fill(0.1) },
+  };
+}
+
+function guardOf({ rejectSd, rejectMaxTicks, stuck }: Calibration): Bundle['guard'] {
+  return {
+    rejectSd,
+    maxTicks: rejectMaxTicks,
+    confirmsJumps: true,
+    ...(stuck === undefined
+      ? {}
+      : {
+          stuck: Array.from(stuck.ticks),
+          rests: stuck.rests.map((values) => Array.from(values)),
+          ...(stuck.acts ? { stuckActs: true as const } : {}),
+        }),
   };
 }
 

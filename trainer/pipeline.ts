@@ -18,6 +18,7 @@ import { type Hindcast, hindcast } from './judge/hindcast.ts';
 import { type PlanWorth, planWorth } from './judge/plan-worth.ts';
 import { type Reliance, reliance } from './judge/reliance.ts';
 import { meanOf } from './judge/scores.ts';
+import { settleStuck } from './judge/stuck-guard.ts';
 import { type KindSections, withCalibration } from './kinds/candidate.ts';
 import { chooseKind, type KindChoice, type Tried } from './kinds/choose-kind.ts';
 import { learnPlans, type Plans, plannedInputs } from './plans.ts';
@@ -178,7 +179,9 @@ function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Pr
   const { candidate } = choice;
   const plans = learnPlans(candidate, prepared, split.calibrate.toTick - series.firstTick, planned);
   const span = indices(split.calibrate, series);
-  const calibration = calibrate(candidate.rounded, prepared.calm, span, options.coverage, siteLimits(site));
+  const guarded = calibrate(candidate.rounded, prepared.calm, span, options.coverage, siteLimits(site));
+  const stuck = settleStuck(withCalibration(candidate.rounded, guarded), prepared.calm, span, prepared.stuck);
+  const calibration = { ...guarded, ...(stuck === undefined ? {} : { stuck }) };
   const parts = { ...partsOf(candidate.sections, candidate.settled), calibration, response: plans.response?.tensors };
   const bundle = composeBundle(parts);
   return { choice, bundle, parts, plans, float: withCalibration(candidate.float, calibration) };

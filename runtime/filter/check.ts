@@ -2,12 +2,14 @@
  * What a model must be before anything is computed with it: shapes that agree, finite numbers, a memory that forgets.
  * Checked once, at the door, so that the kernels need no checks. What a kind adds, its kernel checks.
  */
-import { CROSSING_KNOTS } from '@stillwell/protocol';
+import { CROSSING_KNOTS, MAX_SNAPSHOT_BYTES } from '@stillwell/protocol';
 import { kernelOf } from './kernels.ts';
 import type { CommonModel, Model } from './model.ts';
+import { checkStuckGuard } from './repeats.ts';
 import { requireEach, requireField, requireLength, requireWeights, requireWhole, WEIGHT_LIMIT } from './requirement.ts';
 import { checkResponse } from './response.ts';
 import { checkRound } from './round.ts';
+import { stateSize } from './snapshot.ts';
 
 /** Largest size of a mean, a clip or a lattice offset, in units of the signal. */
 const UNIT_LIMIT = 1e15;
@@ -23,8 +25,10 @@ export function checkModel(model: Model): void {
   kernelOf(model).check(model);
   checkShapes(model);
   checkChannels(model);
+  if (model.stuck !== undefined) checkStuckGuard(model, model.stuck);
   if (model.response !== undefined) checkResponse(model, model.response);
   if (model.round !== undefined) checkRound(model, model.round);
+  checkMemory(model);
   requireWeights(model.seasonal, 'seasonal');
   requireEach(model.radius, 'radius', (value) => value >= 0 && value <= WEIGHT_LIMIT, 'a finite number, zero or more');
   requireField(model.coverage > 0 && model.coverage < 1, 'coverage', 'more than 0 and less than 1', model.coverage);
@@ -40,6 +44,13 @@ export function checkModel(model: Model): void {
     'a finite number above 0',
     model.rejectSd,
   );
+}
+
+/** What is remembered must fit into a segment: lags and rounds of many channels do not. */
+function checkMemory(model: Model): void {
+  const bytes = stateSize(model);
+  const most = MAX_SNAPSHOT_BYTES;
+  requireField(bytes <= most, 'memory (lags, round)', `a snapshot of at most ${most} bytes`, `${bytes} bytes`);
 }
 
 function checkCrossingMap(map: Float64Array | undefined): void {

@@ -6,6 +6,7 @@
  */
 import { kernelOf } from './kernels.ts';
 import type { CommonModel, Model } from './model.ts';
+import { leanOnStanding } from './repeats.ts';
 import { respond } from './response.ts';
 import { addRound } from './round.ts';
 import { type FilterState, fadeTicks } from './state.ts';
@@ -87,6 +88,7 @@ export function forecastPath(
   if (plan !== null && model.response !== undefined && state.response !== null)
     respond(model, model.response, state.response, state, plan, median);
   finish(model, state, H, median);
+  if (model.stuck?.acts === true) leanOnStanding(model, state, H, median);
   for (let i = 0; i < model.signalCount; i++) toUnits(model, i, median, i * H, H);
 }
 

@@ -73,6 +73,7 @@ function commonOf(bundle: Bundle): Omit<CommonModel, 'order'> {
     rejectSd: bundle.guard.rejectSd,
     rejectMaxTicks: bundle.guard.maxTicks,
     ...(bundle.guard.confirmsJumps === true ? { confirmsJumps: true } : {}),
+    ...stuckOf(bundle.guard),
     warmupTicks: bundle.warmupTicks,
     ...(bundle.response === undefined ? {} : { response: responseOf(bundle.response) }),
     ...(bundle.round === undefined
@@ -93,6 +94,12 @@ function responseOf(response: ResponseTensors): ResponseModel {
     basis: dequantise(response.basis),
     surprise: Float64Array.from(response.surprise),
   };
+}
+
+function stuckOf({ stuck, rests, stuckActs }: Bundle['guard']): Pick<CommonModel, 'stuck'> {
+  if (stuck === undefined || rests === undefined) return {};
+  const lists = rests.map((values) => Float64Array.from(values));
+  return { stuck: { ticks: Int32Array.from(stuck), rests: lists, acts: stuckActs === true } };
 }
 
 /** The bank and the tensors around it. */

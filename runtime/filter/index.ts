@@ -20,10 +20,11 @@ export type { LinearCore } from './linear.ts';
 export type { BankModel, CommonModel, DenseModel, LinearModel, Model } from './model.ts';
 export { normalCdf, normalDensity, normalQuantile } from './normal-table.ts';
 export * from './probe.ts';
-export { checkResponse, lookAtInput, ownFeatureCount, type ResponseModel } from './response.ts';
+export { type StuckGuard, standsStill } from './repeats.ts';
+export { lookAtInput, ownFeatureCount, type ResponseModel } from './response.ts';
 export type { Round } from './round.ts';
 export { restoreBounds, restoreState, saveBounds, saveState } from './snapshot.ts';
-export { createState, type FilterState, FOLDED, MISSING, PASSED_OVER } from './state.ts';
+export { createState, type FilterState, FOLDED, MISSING, PASSED_OVER, STUCK } from './state.ts';
 export {
   type CorrectionBuffers,
   createCorrection,

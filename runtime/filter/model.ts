@@ -4,6 +4,7 @@
  */
 import type { DrivenModel } from './driven-model.ts';
 import type { FeaturedModel } from './featured-model.ts';
+import type { StuckGuard } from './repeats.ts';
 import type { ResponseModel } from './response.ts';
 import type { Round } from './round.ts';
 import type { SwitchedModel } from './switched-model.ts';
@@ -51,6 +52,8 @@ export interface CommonModel {
   /** Whether a second reading as far off as the one passed over before it is taken for a jump; absent: it is not. */
   readonly confirmsJumps?: boolean;
   readonly warmupTicks: number;
+  /** When a reading that repeats itself counts as missing; absent: never. */
+  readonly stuck?: StuckGuard;
   /** What a plan of the inputs adds; absent: nothing, or the kind takes plans itself. */
   readonly response?: ResponseModel;
   /** What a round ago is taken away before the kernel sees a value; absent: nothing. */

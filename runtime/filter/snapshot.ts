@@ -11,7 +11,8 @@
  * | 12 | 8 | tick, float64 |
  * | 20 | … | state: per channel started u8, passed u16, age u16, lean i16, then float64 value and what the kind keeps of the channel |
  * |    |   | (linear: memories, ring oldest first), and after the channels what it keeps of no channel alone; then the |
- * |    |   | last round of every signal that has one, oldest first |
+ * |    |   | last round of every signal that has one, oldest first; then, with a guard against sensors that hang, per signal |
+ * |    |   | readings alike u16 and the reading float64 |
  * |    |   | bounds: warmed u32, radius and, unless tracked as in the first bundles, stretch float64 (ny × scored steps each), |
  * |    |   | forecasts under way float32 as `Bounds.issued` |
  * | end − 4 | 4 | CRC-32 of all before |
@@ -47,10 +48,21 @@ function eachOfRounds({ round }: Model, state: FilterState, visit: (slot: number
   }
 }
 
-/** Bytes of a state's snapshot. */
-function stateSize(model: Model): number {
+/** Ten bytes for each signal, with a guard against sensors that hang. */
+function repeatBytes({ stuck, signalCount }: Model): number {
+  return stuck === undefined ? 0 : 10 * signalCount;
+}
+
+/**
+ * Bytes of a state's snapshot, whatever the state.
+ *
+ * shapes  of a model whose kernel has checked it
+ */
+export function stateSize(model: Model): number {
   const { perChannel, shared } = kernelOf(model).memoryLayout(model);
-  return HEAD + model.channelCount * (7 + 8 * (1 + perChannel)) + 8 * (shared + roundCount(model)) + 4;
+  return (
+    HEAD + model.channelCount * (7 + 8 * (1 + perChannel)) + 8 * (shared + roundCount(model)) + repeatBytes(model) + 4
+  );
 }
 
 /**
@@ -80,6 +92,10 @@ export function saveState(model: Model, state: FilterState): Uint8Array {
     view.setFloat64(at, state.roundMemory[slot], true);
     at += 8;
   });
+  for (let i = 0; i < state.repeats.length; i++, at += 10) {
+    view.setUint16(at, state.repeats[i], true);
+    view.setFloat64(at + 2, state.repeated[i], true);
+  }
   view.setUint32(at, crc32(bytes, 0, at), true);
   return bytes;
 }
@@ -120,6 +136,11 @@ export function restoreState(model: Model, bytes: Uint8Array): FilterState {
     areFinite &&= Math.abs(state.roundMemory[slot]) !== Number.POSITIVE_INFINITY;
     at += 8;
   });
+  for (let i = 0; i < state.repeats.length; i++, at += 10) {
+    state.repeats[i] = view.getUint16(at, true);
+    state.repeated[i] = view.getFloat64(at + 2, true);
+    areFinite &&= Number.isFinite(state.repeated[i]);
+  }
   if (!areFinite) throw refusal('state', 'memories', 'finite numbers', 'NaN or infinity');
   kernel.copyIn(model, state.core, -1, numbers, 0);
   if (model.round !== undefined) {
@@ -225,6 +246,7 @@ function fingerprint(model: Model): number {
     Float64Array.of(model.channelCount, model.signalCount, model.horizon, model.rejectMaxTicks, model.tickMs),
     ...kernelOf(model).fingerprint(model),
     ...(model.round === undefined ? [] : [Float64Array.of(model.round.ticks), model.round.weight]),
+    ...(model.stuck === undefined ? [] : [Float64Array.from(model.stuck.ticks), ...model.stuck.rests]),
     model.mean,
     model.scale,
   ];

@@ -15,6 +15,8 @@ export const MISSING = 0;
 export const FOLDED = 1;
 /** Values of `observed`: a reading came but lay too far from its forecast, and was passed over. */
 export const PASSED_OVER = 2;
+/** Values of `observed`: a reading came but repeats itself as no working sensor does; it counts as missing. */
+export const STUCK = 3;
 
 /** Shortest fade: with a horizon of a tick or two, one missed reading would throw the forecast onto the seasonal mean. */
 const LEAST_FADE_TICKS = 8;
@@ -48,7 +50,7 @@ export interface FilterState {
   readonly reading: Float64Array;
   /** (nc) reading − one-step forecast, NaN where missing; present also for a reading passed over. */
   readonly innovation: Float64Array;
-  /** (nc) MISSING, FOLDED or PASSED_OVER. */
+  /** (nc) MISSING, FOLDED, PASSED_OVER or STUCK. */
   readonly observed: Uint8Array;
   /** (nc) 1 once a reading has been folded in. */
   readonly started: Uint8Array;
@@ -64,6 +66,10 @@ export interface FilterState {
   readonly x: Float64Array;
   /** Of the response to plans; null where the model has none. */
   readonly response: ResponseBuffers | null;
+  /** (ny) readings alike up to the last one, 65535 for all beyond; 0 before the first. Empty without that guard. */
+  readonly repeats: Int32Array;
+  /** (ny) the reading that they are, in units of the signal. */
+  readonly repeated: Float64Array;
   /** (nc) clips, standardised */
   readonly low: Float64Array;
   readonly high: Float64Array;
@@ -96,6 +102,8 @@ export function createState(model: Model): FilterState {
     core,
     x: core.x,
     response: model.response === undefined ? null : createResponseBuffers(model, model.response),
+    repeats: new Int32Array(model.stuck === undefined ? 0 : model.signalCount),
+    repeated: new Float64Array(model.stuck === undefined ? 0 : model.signalCount),
     low: standardised(model.clipLow),
     high: standardised(model.clipHigh),
   };

@@ -23,7 +23,7 @@
 import { FilterError } from './errors.ts';
 import { type Bounds, radiiOf } from './interval.ts';
 import type { CommonModel } from './model.ts';
-import { type FilterState, MISSING } from './state.ts';
+import { type FilterState, MISSING, STUCK } from './state.ts';
 
 /** An error this many times the radius shows that the calibrated one is of the wrong size. */
 const WRONG_SIZE = 16;
@@ -56,7 +56,7 @@ export function trackBounds(model: CommonModel, bounds: Bounds, state: FilterSta
   const { steps, issuedWidth: width } = bounds;
   const ny = model.signalCount;
   for (let i = 0; i < ny; i++) {
-    if (state.observed[i] === MISSING) continue;
+    if (state.observed[i] === MISSING || state.observed[i] === STUCK) continue;
     for (let k = 0, ring = 0; k < steps.length; ring += steps[k] * ny, k++) {
       const slot = (ring + (tick % steps[k]) * ny + i) * width;
       if (width === 1) scoreFirst(model, bounds, state, i, k, slot);

@@ -7,8 +7,9 @@ import { FilterError } from './errors.ts';
 import { predictStandardised } from './forecast.ts';
 import { kernelOf } from './kernels.ts';
 import type { CommonModel, Model } from './model.ts';
+import { countRepeats, standsStill } from './repeats.ts';
 import { advanceRound, isFirstRound } from './round.ts';
-import { type FilterState, FOLDED, fadeTicks, MISSING, PASSED_OVER } from './state.ts';
+import { type FilterState, FOLDED, fadeTicks, MISSING, PASSED_OVER, STUCK } from './state.ts';
 
 /**
  * Folds one tick into the state, in place. A NaN or infinite reading counts as missing.
@@ -19,7 +20,8 @@ import { type FilterState, FOLDED, fadeTicks, MISSING, PASSED_OVER } from './sta
  * readings are folded in however far off, until they come near again. Were the count cleared by the first reading folded
  * in, a filter once thrown off its plant would pass over rejectMaxTicks of every rejectMaxTicks + 1 readings for ever.
  * A model may ask that a second far reading in the same place be taken for what it is, a jump, and folded in at once.
- * Inputs are commands and setpoints, whose jumps are real: they are never passed over.
+ * Inputs are commands and setpoints, whose jumps are real: they are never passed over. A signal that repeats itself as no
+ * working sensor does counts as missing (repeats.ts).
  *
  * shapes  readings (nc)
  * units   readings in units of the channels; state standardised
@@ -34,7 +36,8 @@ export function update(model: Model, state: FilterState, tick: number, readings:
   if (state.tick >= 0) kernel.beforeTick(model, state.core, state);
   for (let c = 0; c < model.channelCount; c++) {
     // y − y is 0 for finite y alone.
-    if (readings[c] - readings[c] !== 0) missed(model, state, c, tick);
+    if (readings[c] - readings[c] !== 0) missed(model, state, c, tick, MISSING);
+    else if (hangs(model, state, c, readings[c])) missed(model, state, c, tick, STUCK);
     else observe(model, state, c, tick, readings);
   }
   state.tick = tick;
@@ -89,10 +92,17 @@ function isUnguarded(model: CommonModel, state: FilterState, c: number, tick: nu
   return model.round !== undefined && isFirstRound(model.round, state, c, tick);
 }
 
-function missed(model: Model, state: FilterState, c: number, tick: number): void {
+function hangs(model: CommonModel, state: FilterState, c: number, reading: number): boolean {
+  const { stuck, signalCount } = model;
+  if (stuck === undefined || c >= signalCount) return false;
+  countRepeats(state, c, reading);
+  return stuck.acts && standsStill(model, state, c);
+}
+
+function missed(model: Model, state: FilterState, c: number, tick: number, why: number): void {
   state.reading[c] = Number.NaN;
   state.innovation[c] = Number.NaN;
-  state.observed[c] = MISSING;
+  state.observed[c] = why;
   replace(model, state, c, tick, state.predicted[c]);
 }
 

@@ -1,10 +1,10 @@
 /**
  * How far a forecast may be trusted, as a status letter in the sense of NAMUR NE 107: C while the filter warms up or
  * catches up, S where a reading lies outside what the bundle was trained on or a plan in use proved wrong, M where readings
- * are missing. F, no usable
- * model, is said in health: without a model nothing is forecast.
+ * are missing or repeat themselves. F, no usable model, is said in health: without a model nothing is forecast.
  */
 import type { Quality } from '@stillwell/protocol';
+import { standsStill } from '@stillwell/runtime/filter';
 import type { Serving } from '../serving.ts';
 
 /** A letter and its reason. */
@@ -36,6 +36,11 @@ export function judge(
     if (serving.isOutside[i] === 1) return bad('S', `${channels[i]!.name}: reading outside the trained range`);
   if (planFault !== null) return bad('S', planFault);
   for (let i = from; i < to; i++) {
+    if (standsStill(serving.model, serving.state, i))
+      return bad(
+        'M',
+        `${channels[i]!.name}: the same reading ${serving.state.repeats[i]} times, more than ever by nature`,
+      );
     const age = serving.state.age[i]!;
     if (age >= STALE_TICKS) return bad('M', `${channels[i]!.name}: no reading for ${age} ticks or more`);
   }

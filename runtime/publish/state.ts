@@ -1,6 +1,6 @@
 /** The state message of a tick. */
 import { stateMessage } from '@stillwell/protocol';
-import { MISSING } from '@stillwell/runtime/filter';
+import { MISSING, STUCK } from '@stillwell/runtime/filter';
 import type { Serving } from '../serving.ts';
 import { headOf, type Occasion } from './moment.ts';
 
@@ -14,6 +14,6 @@ export function statePayload(serving: Serving, occasion: Occasion): Uint8Array {
     tickMs: model.tickMs,
     filtered: Object.fromEntries(names.map((name, i) => [name, model.mean[i]! + model.scale[i]! * state.value[i]!])),
     state: state.x,
-    missing: names.filter((_, i) => state.observed[i] === MISSING),
+    missing: names.filter((_, i) => state.observed[i] === MISSING || state.observed[i] === STUCK),
   });
 }

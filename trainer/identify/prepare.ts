@@ -2,7 +2,7 @@
  * A history made ready for learning: scaled, completed, its period and seasonal means found; and what was odd about it.
  */
 import type { Signal, Site } from '@stillwell/protocol';
-import type { Round } from '@stillwell/runtime/filter';
+import type { Round, StuckGuard } from '@stillwell/runtime/filter';
 import { excludedNotes, withoutExcluded } from '../exclusions.ts';
 import { channelsOf } from '../history/channels.ts';
 import type { Series } from '../history/series.ts';
@@ -14,6 +14,7 @@ import type { LearnInput } from './learn.ts';
 import { findPeriods } from './period.ts';
 import { findScalings, type Scaling } from './scaling.ts';
 import { seasonOf } from './season.ts';
+import { findStuck, withoutStuck } from './stuck.ts';
 
 /** Ready for learning. */
 export interface Prepared {
@@ -21,6 +22,8 @@ export interface Prepared {
   /** The history without its wild readings and excluded time: what is learned and calibrated from. */
   readonly calm: Series;
   readonly filled: Filled;
+  /** From when on a signal stands still. */
+  readonly stuck: Omit<StuckGuard, 'acts'>;
   /** Periods beside the seasonal one, ticks. */
   readonly otherPeriods: readonly number[];
   readonly learnTicks: number;
@@ -49,12 +52,13 @@ export function prepareHistory(
   const series = withoutExcluded(seen);
   const learnTicks = split.learn.toTick - split.learn.fromTick;
   const calibrateTicks = split.calibrate.toTick - split.calibrate.fromTick;
+  const stuck = findStuck(series, learnTicks);
   const steps = lattices.map((lattice) => lattice.step);
   const longGap = Math.max(LEAST_LONG_GAP, site.horizon);
   const ends = { learnTicks, calibrateEnd: learnTicks + calibrateTicks };
   const excursions = findExcursions(series, steps, longGap, ends);
   const calm = withoutExcursions(series, excursions);
-  const found = findScalings(calm, learnTicks, steps);
+  const found = findScalings(calm, learnTicks, ends.calibrateEnd, steps);
   const scalings = found.map((scaling, c) => withinRange(scaling, channelsOf(site)[c]));
   const first = fillHistory(calm, scalings, 0, longGap, ends);
   const learning = first.values.slice(0, series.signalCount).map((z) => z.subarray(0, learnTicks));
@@ -72,11 +76,13 @@ export function prepareHistory(
     },
     calm,
     filled,
+    stuck,
     otherPeriods: others,
     learnTicks,
     calibrateTicks,
     warnings: [
       ...excludedNotes(seen),
+      ...stuckWarnings(series, withoutStuck(series, stuck), ends),
       ...warningsOf(series, scalings, period),
       ...excursionWarnings(series, excursions, ends),
       ...silentWhereBoundsAreSet(series, ends),
@@ -129,6 +135,22 @@ function warningsOf(series: Series, scalings: readonly Scaling[], period: number
   });
   if (period === 0) warnings.push('No period was found, so forecasts follow recent readings alone.');
   return warnings;
+}
+
+/** What hung before the judged part. */
+function stuckWarnings(seen: Series, left: Series, ends: PartEnds): string[] {
+  return seen.names.flatMap((name, c) => {
+    let ticks = 0;
+    let first = -1;
+    for (let t = 0; t < ends.calibrateEnd; t++) {
+      if (Number.isNaN(seen.values[c][t]) || !Number.isNaN(left.values[c][t])) continue;
+      if (first < 0) first = t;
+      ticks++;
+    }
+    if (ticks === 0) return [];
+    const at = new Date((seen.firstTick + first) * seen.tickMs).toISOString();
+    return `${name}: repeats one reading for longer than it ever does by nature, first at ${at}; ${ticks === 1 ? '1 tick' : `${ticks} ticks`} in all. If the sensor hung, exclude them in the site file.`;
+  });
 }
 
 /** What was wild before the judged part: where it lies is worth a look. */

@@ -2,7 +2,7 @@
  * A model to compute with, from learned factors, before there is a bundle: for calibration, and for the audit.
  */
 import { CROSSING_KNOTS } from '@stillwell/protocol';
-import type { CommonModel, LinearModel, Round } from '@stillwell/runtime/filter';
+import type { CommonModel, LinearModel, Round, StuckGuard } from '@stillwell/runtime/filter';
 import { type Bank, featureCount } from '../identify/bank.ts';
 import type { Scaling } from '../identify/scaling.ts';
 import type { Season } from '../identify/season.ts';
@@ -33,6 +33,8 @@ export interface Calibration {
   readonly radius: Float64Array;
   readonly rejectSd: number;
   readonly rejectMaxTicks: number;
+  /** When a reading that repeats itself counts as missing; absent: never. */
+  readonly stuck?: StuckGuard;
   /** Largest step of the tracker at step h, times h + 5. */
   readonly boundsLongRate?: number;
   /** What said crossing probabilities come to; absent: as said. */
