@@ -7,6 +7,7 @@ export {
   MAX_SEGMENT_BYTES,
   MAX_SEGMENT_TICKS,
   MAX_SEGMENT_VALUES,
+  MAX_SNAPSHOT_BYTES,
   MAX_STATE_BYTES,
 } from './limits.ts';
 export { SegmentReader } from './reader.ts';

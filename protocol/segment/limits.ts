@@ -13,6 +13,8 @@ export const MAX_SEGMENT_VALUES = 1 << 21;
 export const MAX_CORRECTIONS = 65_536;
 /** Inflated bytes of a keyed start: 256 channels × 60 features × 8 bytes, doubled. */
 export const MAX_STATE_BYTES = 256 * 1024;
+/** Bytes of a filter's snapshot that a model may ask for: should they not deflate at all, 32 KiB of readings still fit beside. */
+export const MAX_SNAPSHOT_BYTES = MAX_SEGMENT_BYTES - 32 * 1024;
 /** Largest magnitude of a lattice index: 40 bits, a 24-bit converter summed for eighteen hours of seconds. */
 export const MAX_INDEX = 2 ** 40;
 

@@ -8,7 +8,7 @@
  * whole boundary is tried again. A file that failed to sync is never trusted again.
  */
 import { join } from 'node:path';
-import { MAX_INDEX, SegmentWriter } from '@stillwell/protocol';
+import { MAX_INDEX, MAX_SEGMENT_BYTES, SegmentWriter } from '@stillwell/protocol';
 import { type Disk, replaceOn, sweepParts } from '../disk.ts';
 import type { LateChange, OpenReadings } from '../ingest/align.ts';
 import type { Serving } from '../serving.ts';
@@ -58,8 +58,12 @@ export interface JournalCounts {
   readonly lost: number;
 }
 
-/** A segment closes by size well before the most that one may hold. */
+/** A segment closes by size well before the most that one may hold … */
 const SEGMENT_BYTES = 96 * 1024;
+/** … and sooner where a start in full takes much of it. Bytes kept free for head and rounding up … */
+const SPARE_BYTES = 16 * 1024;
+/** … and for each late reading. */
+const CORRECTION_BYTES = 12;
 const MOST_CORRECTIONS = 8192;
 /** A flood of readings closes the segment early, so that a restart need not read too much … */
 const JOURNAL_BYTES = 8 * 1024 * 1024;
@@ -135,7 +139,7 @@ export class Journal {
     const writer = this.#writer;
     if (writer === null) return false;
     const { ticks, bytesSoFar, isFull } = writer;
-    if (ticks >= this.#options.segmentTicks || bytesSoFar >= SEGMENT_BYTES || isFull) return true;
+    if (ticks >= this.#options.segmentTicks || bytesSoFar >= this.#mostBytes() || isFull) return true;
     return this.#corrections >= MOST_CORRECTIONS || (this.#wal?.bytes ?? 0) >= JOURNAL_BYTES;
   }
 
@@ -227,6 +231,13 @@ export class Journal {
   stop(): void {
     this.#guard(() => this.#wal?.sync());
     this.#closeWal();
+  }
+
+  /** Coded bytes after which the open segment closes. */
+  #mostBytes(): number {
+    const start = this.#sinceKeyed === 0 ? this.#startState.length : 0;
+    const free = MAX_SEGMENT_BYTES - SPARE_BYTES - start - CORRECTION_BYTES * this.#corrections;
+    return Math.min(SEGMENT_BYTES, free);
   }
 
   #openWriter(serving: Serving, firstTick: number): SegmentWriter {
