@@ -8,7 +8,7 @@ import { type Composition, composeBundle, documentBytes, judgeTable, placeholder
 import type { FitInput, FitOptions } from './fit-options.ts';
 import type { Series } from './history/series.ts';
 import { bankName, featureCount } from './identify/bank.ts';
-import { type Prepared, prepareHistory } from './identify/prepare.ts';
+import { type Prepared, prepareHistory, scalingsForAll } from './identify/prepare.ts';
 import { responseRoom } from './identify/response.ts';
 import { type Taught, teach } from './identify/teach.ts';
 import { calibrate } from './judge/calibrate.ts';
@@ -206,7 +206,8 @@ function learnFromAll(series: Series, prepared: Prepared, { choice, parts, plans
   const again = choice.candidate.again(series.ticks);
   const { response } = learnPlans(again, prepared, series.ticks, plans.response === null ? [] : plans.planned);
   const learnedToTick = series.firstTick + series.ticks;
-  return { ...parts, sections: again.sections, response: response?.tensors, learnedToTick };
+  const around = { ...parts.around, scalings: scalingsForAll(prepared, parts.input.site) };
+  return { ...parts, around, sections: again.sections, response: response?.tensors, learnedToTick };
 }
 
 /** Goes into the provenance: what `hindcast` needs to know of the split, and what was chosen. */

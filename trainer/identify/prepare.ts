@@ -91,6 +91,25 @@ export function prepareHistory(
 }
 
 /**
+ * The scalings with clips that leave room for every reading of the history: for a model that learns once more from all of it.
+ *
+ * shapes  result (nc)
+ * units   the signals'
+ * throws  nothing that `prepareHistory` did not
+ * source  as `findScalings`
+ * cost    O(nc T log T)
+ */
+export function scalingsForAll({ around, calm }: Prepared, site: Site): Scaling[] {
+  const steps = around.lattices.map((lattice) => lattice.step);
+  return findScalings(calm, calm.ticks, calm.ticks, steps).map((all, c) => {
+    const own = around.scalings[c];
+    const clipLow = Math.min(own.clipLow, all.clipLow);
+    const clipHigh = Math.max(own.clipHigh, all.clipHigh);
+    return own.isConstant ? own : withinRange({ ...own, clipLow, clipHigh }, channelsOf(site)[c]);
+  });
+}
+
+/**
  * Clips no wider than the site file's range, beyond which no reading is taken: then no forecast or bound says what cannot
  * be. Sums and increments have no range of their own.
  */
