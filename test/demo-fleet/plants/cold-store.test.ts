@@ -1,19 +1,22 @@
 import { describe, expect, it } from 'vitest';
+import { defrostTimesOf } from '../../../demo-fleet/plants/build.ts';
 import { ColdStore, type ColdStoreDesign } from '../../../demo-fleet/plants/cold-store.ts';
+import type { DefrostTimes } from '../../../demo-fleet/plants/defrost.ts';
 import { DEMO_SITES } from '../../../demo-fleet/plants/sites.ts';
 import { openRandom } from '../../../demo-fleet/random.ts';
 
 const START = Date.UTC(2025, 3, 7);
 const designs = DEMO_SITES.flatMap((site) =>
-  site.kind === 'cold-store' ? [{ name: site.name, design: site.design }] : [],
+  site.kind === 'cold-store' ? [{ name: site.name, design: site.design, defrosts: defrostTimesOf(site, 3) }] : [],
 );
 
 function runDays(
   design: ColdStoreDesign,
+  defrosts: DefrostTimes | null,
   days: number,
   wear = 0,
 ): { store: ColdStore; startEnergy: number; room: number[]; starts: number } {
-  const store = new ColdStore(design, openRandom(3, 'test'));
+  const store = new ColdStore(design, openRandom(3, 'test'), defrosts);
   store.wear(wear);
   const startEnergy = store.stored;
   const room: number[] = [];
@@ -34,10 +37,12 @@ const imbalance = (store: ColdStore, startEnergy: number): number => {
   return Math.abs(store.stored - startEnergy - (wall + doors + fans + defrost - removed)) / removed;
 };
 
-describe.each(designs)('cold store $name', ({ design }) => {
+describe.each(designs)('cold store $name', ({ design, defrosts }) => {
   it('keeps its heat: flows and stored energy close to 1e-9 of the heat removed over ten days', () => {
-    const { store, startEnergy } = runDays(design, 10);
+    const { store, startEnergy } = runDays(design, defrosts, 10);
     expect(store.ledger.removed).toBeGreaterThan(0);
+    // Heaters act where there are defrosts, so that the balance is kept with them in it.
+    expect(store.ledger.defrost > 0).toBe(defrosts !== null);
     expect(imbalance(store, startEnergy)).toBeLessThan(1e-9);
     // The comparator sees one kilojoule in a thousand million gone missing.
     store.ledger.doors += 1e-8 * store.ledger.removed;
@@ -45,14 +50,14 @@ describe.each(designs)('cold store $name', ({ design }) => {
   });
 
   it('cycles about its set-point', () => {
-    const { room, starts } = runDays(design, 5);
+    const { room, starts } = runDays(design, defrosts, 5);
     const mean = room.reduce((sum, value) => sum + value, 0) / room.length;
     expect(Math.abs(mean - design.setPoint)).toBeLessThan(design.deadBand / 2);
     expect(starts).toBeGreaterThan(25);
   });
 
   it('moves more heat per kWh than it takes, and less than Carnot allows', () => {
-    const { store } = runDays(design, 5);
+    const { store } = runDays(design, defrosts, 5);
     const performance = store.ledger.removed / store.ledger.compressor;
     // Carnot's bound between the coldest evaporating and the mildest condensing temperature of the run.
     const carnot = (273.15 + design.setPoint) / (design.condenserRise + 5);
@@ -61,8 +66,8 @@ describe.each(designs)('cold store $name', ({ design }) => {
   });
 
   it('works harder with a worn door seal', () => {
-    const fresh = runDays(design, 3);
-    const worn = runDays(design, 3, 1);
+    const fresh = runDays(design, defrosts, 3);
+    const worn = runDays(design, defrosts, 3, 1);
     expect(worn.store.ledger.compressor).toBeGreaterThan(1.1 * fresh.store.ledger.compressor);
   });
 });
