@@ -194,6 +194,7 @@ function legend({ rivals }: Hindcast): string {
 function findings(survey: Survey, { warnings }: FitResult): string {
   const rows = survey.findings.map((finding) => [escapeHtml(finding.kind), escapeHtml(finding.sentence)]);
   const listed = rows.length > 0 ? table(['what', 'where and how much'], rows) : '<p>Nothing out of the ordinary.</p>';
-  const warned = warnings.map((warning) => `<p class="caution">${escapeHtml(warning)}</p>`).join('');
-  return listed + warned;
+  if (warnings.length === 0) return listed;
+  const warned = warnings.map((warning) => `<li>${escapeHtml(warning)}</li>`).join('\n');
+  return `${listed}\n<div class="caution">What this did to the fit:<ul>${warned}</ul></div>`;
 }

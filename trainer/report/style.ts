@@ -19,5 +19,6 @@ figure { margin: 0; } figcaption { color: #555; font-size: 13px; } svg { max-wid
 td strong { white-space: nowrap; } table.glance td { padding-right: 1rem; } .mood { display: inline-block; padding: .05rem .5rem; border-radius: .2rem; }
 .mood.good { background: rgb(0 158 115 / .25); } .mood.fair { background: rgb(230 159 0 / .25); } .mood.bad { background: rgb(213 94 0 / .3); }
 code { font-size: 13px; overflow-wrap: anywhere; }
-@media print { body { max-width: none; padding: 0; } h2, h3 { break-after: avoid; } figure, table { break-inside: avoid; } }
+@media print { body { max-width: none; padding: 0; font-size: 12px; } .wide { overflow: visible; } table { font-size: 11px; } .cell { min-width: 0; padding: .15rem .25rem; }
+  th, td { padding-right: .35rem; } * { print-color-adjust: exact; -webkit-print-color-adjust: exact; } h2, h3 { break-after: avoid; } figure, table { break-inside: avoid; } }
 `;
