@@ -1,0 +1,79 @@
+/** The report: what it says at a glance, that the worst day comes first, and that nothing in it is undefined. */
+import { parseHTML } from 'linkedom';
+import { beforeAll, describe, expect, test } from 'vitest';
+import { FIT_DEFAULTS, type FitResult, fit as fitHistory } from '../../../trainer/pipeline.ts';
+import { leansOn, trustedSteps } from '../../../trainer/report/glance.ts';
+import { fitReport } from '../../../trainer/report/page.ts';
+import { hourlySite, seriesOf, wanderingDays } from '../../support/history.ts';
+
+const names = ['level', 'flow'];
+const site = hourlySite(names, 12, []);
+const DAY = 24;
+
+let result: FitResult;
+let page: Document;
+
+beforeAll(async () => {
+  const values = wanderingDays(2, 1500, 5);
+  // One day of the judged part goes its own way: hour 1320 is the start of a day of ticks since 1970.
+  const series = seriesOf(names, values);
+  const from = 1320 - ((series.firstTick + 1320) % DAY);
+  for (let t = from; t < from + DAY; t++) values[0]![t] = values[0]![t]! + 40 * Math.sin(t);
+  const lattices = names.map(() => ({ step: 0.01, offset: 0 }));
+  result = await fitHistory({ series, site, survey: {}, lattices }, { ...FIT_DEFAULTS, kind: 'linear' });
+  const survey = { findings: [] } as unknown as Parameters<typeof fitReport>[0]['survey'];
+  page = parseHTML(fitReport({ site, survey, result })).document;
+});
+
+const headings = (): string[] => [...page.querySelectorAll('h2')].map((heading) => heading.textContent ?? '');
+
+describe('the page', () => {
+  test('says first whether it may be trusted, then what is wrong, then how far ahead', () => {
+    expect(headings().slice(0, 3)).toEqual([
+      'At a glance',
+      'What was found wrong in the history',
+      'How far ahead it can be trusted',
+    ]);
+    expect(page.querySelector('.verdict')?.textContent).toBe(result.verdicts.sentence);
+    expect(page.querySelector('.caution')?.textContent).toMatch(/Not a safety function/);
+  });
+
+  test('names the day that went its own way as the worst, and the signal that stood out', () => {
+    const from = 1320 - ((result.learn.fromTick + 1320) % DAY);
+    const worst = new Date((result.learn.fromTick + from) * 3_600_000).toISOString().slice(0, 10);
+    const table = [...page.querySelectorAll('h2')].find((h) => h.textContent === 'The worst of it first')
+      ?.nextElementSibling?.nextElementSibling;
+    const first = table?.querySelector('tbody tr')?.textContent ?? '';
+    // Forecasts begun on the evening before reach into it, too.
+    const before = new Date(Date.parse(worst) - 86_400_000).toISOString().slice(0, 10);
+    expect([worst, before].some((day) => first.includes(day))).toBe(true);
+    expect(first).toContain('level');
+  });
+
+  test('holds no number that is none, and loads nothing from elsewhere', () => {
+    const text = page.body.textContent ?? '';
+    expect(text).not.toMatch(/NaN|undefined|null|Infinity/);
+    expect([...page.querySelectorAll('script, link, img, iframe')]).toEqual([]);
+    expect(page.querySelectorAll('svg').length).toBeGreaterThan(6);
+  });
+});
+
+describe('at a glance', () => {
+  test('a rival that is better from some step on ends the reach there', () => {
+    const { hindcast } = result;
+    const cells = hindcast.mse.length;
+    // Made up of the real one: ours half of every rival at all steps, then one rival without error from step 7 on.
+    const rivalMse = hindcast.rivalMse.map((_, k) => 2 * hindcast.mse[k % cells]!);
+    expect(trustedSteps({ ...hindcast, rivalMse }, 1)).toBe(12);
+    rivalMse.fill(0, cells - 6, cells);
+    expect(trustedSteps({ ...hindcast, rivalMse }, 1)).toBe(6);
+    expect(trustedSteps({ ...hindcast, rivalMse }, 0)).toBe(12);
+    expect(trustedSteps({ ...hindcast, rivalMse: new Float64Array(rivalMse.length) }, 0)).toBe(0);
+  });
+
+  test('leans on others alone, the dearest first', () => {
+    const channels = ['a', 'b', 'c', 'd'];
+    const ratio = Float64Array.of(9, 1.2, 1.01, 1.5);
+    expect(leansOn({ channels, ratio, origins: 1 }, 0).map(({ name }) => name)).toEqual(['d', 'b']);
+  });
+});
