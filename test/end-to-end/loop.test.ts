@@ -1,6 +1,7 @@
 /**
  * The loop closes: what the desk keeps is, bit for bit, what the gateway's filter saw, over a month with gaps, late and
- * doubled readings, clean stops, power cuts, a change of bundle, and a link that loses, doubles and shuffles segments.
+ * doubled readings, clean stops, power cuts, a change to a bundle of another kind, and a link that loses, doubles and
+ * shuffles segments.
  */
 import { parseReceiptMessage, SegmentWriter, topicsOf } from '@stillwell/protocol';
 import { expect, test } from 'vitest';
@@ -29,8 +30,8 @@ import { shelfFolder } from '../trainer/desk/shelf-folder.ts';
 
 const TICKS = 30 * 144;
 const CHANGE_AT = 15 * 144 + 37;
-const first = monthBundle(1, 1);
-const second = monthBundle(8, 2);
+const first = monthBundle(1, 1, 'linear with all it may have');
+const second = monthBundle(8, 2, 'featured with a round');
 const topics = topicsOf(site.root, MONTH_SITE);
 
 interface Running {

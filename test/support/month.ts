@@ -3,11 +3,11 @@
  * single readings and whole stretches missing, readings that come hours late, readings that come twice, and ticks with
  * two readings. Keeps its own account, by other means than the gateway's, of what each tick holds.
  */
-import { latticeIndex, parseSite, type Site, schemaHash, sealBundle } from '@stillwell/protocol';
+import { encodeBundle, latticeIndex, parseSite, type Site, schemaHash, sealBundle } from '@stillwell/protocol';
 import { modelFromBundle } from '@stillwell/runtime/filter';
+import { bundleOfKind, type KindName } from './every-kind.ts';
 import { type ModelChoice, seededNumbers, syntheticBundle, syntheticReadings } from './models.ts';
 import { author } from './running-site.ts';
-import { sealableBundle } from './segment-maker.ts';
 
 export const MONTH_SITE = 'long-reach';
 export const CHANNELS = ['level', 'inflow', 'power', 'command'] as const;
@@ -49,9 +49,11 @@ const shape: ModelChoice = {
 };
 
 /** A bundle for the station and its sealed bytes. */
-export function monthBundle(seed: number, sequence: number) {
-  const made = sealableBundle({ ...shape, seed });
-  return { ...made, sealed: sealBundle(made.document, { epoch: 1, sequence }, [author]) };
+export function monthBundle(seed: number, sequence: number, kind: KindName) {
+  const bundle = bundleOfKind(kind, { ...shape, seed });
+  const document = encodeBundle(bundle);
+  const sealed = sealBundle(document, { epoch: 1, sequence }, [author]);
+  return { document, bundle, model: modelFromBundle(bundle), sealed };
 }
 
 /** One MQTT message of the station. */
