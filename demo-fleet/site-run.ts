@@ -85,6 +85,10 @@ export class SiteRun {
     });
   }
 
+  get isWell(): boolean {
+    return this.plan.site.kind === 'wet-well';
+  }
+
   /** Ticks a day. */
   get perDay(): number {
     return DAY_MS / this.tickMs;

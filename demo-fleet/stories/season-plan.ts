@@ -37,6 +37,18 @@ export const LINK_CUT_SITE = 'ellerquint';
 export const PLANNED_SITE = 'tessenby';
 /** The planned input and the signal that says what came of it. */
 export const PLANNED = { input: 'defrost', signal: 'room' } as const;
+/**
+ * Share of the best rival's error that a site's forecasts must save at least. Wells beat them easily; a store's doors open
+ * when somebody comes, which nothing foretells, the less so the larger a share of its heat comes in by them.
+ */
+export const LEAST_SKILL: Readonly<Record<string, number>> = {
+  quennadale: 0.8,
+  brackwith: 0.75,
+  ellerquint: 0.75,
+  penvarrow: 0.45,
+  tessenby: 0.5,
+  stavendrith: 0.3,
+};
 /** A wrong plan tells the runs this much later than they come. */
 export const PLAN_LATE_MS = 76 * 60_000;
 

@@ -22,6 +22,7 @@ test('a plan that brings nothing, is not used, is not reported or is reported wi
   expect(kept({ under: score(0.9) })).toEqual([false, true, true, true]);
   expect(kept({ under: null })).toEqual([false, true, true, true]);
   expect(kept({ right: { ...counts, planned: 899 } })).toEqual([true, false, true, true]);
-  expect(kept({ wrong: { ...counts, off: 200, told: 0 } })).toEqual([true, true, false, true]);
+  expect(kept({ wrong: { ...counts, off: 200, told: 100 } })).toEqual([true, true, false, true]);
+  expect(kept({ wrong: counts })).toEqual([true, true, false, true]);
   expect(kept({ right: { ...counts, off: 3, told: 3 } })).toEqual([true, true, true, false]);
 });

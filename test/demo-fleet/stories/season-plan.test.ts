@@ -1,6 +1,13 @@
 import { describe, expect, it } from 'vitest';
 import { DEMO_SITES } from '../../../demo-fleet/plants/sites.ts';
-import { faultsOf, HABITS, timetableOf } from '../../../demo-fleet/stories/season-plan.ts';
+import {
+  faultsOf,
+  HABITS,
+  LEAST_SKILL,
+  PLANNED,
+  PLANNED_SITE,
+  timetableOf,
+} from '../../../demo-fleet/stories/season-plan.ts';
 
 describe('the season', () => {
   it('keeps its order however many days it is given', () => {
@@ -15,6 +22,14 @@ describe('the season', () => {
       for (const length of [worn - learned, refitted - worn, end - refitted])
         expect(length).toBeGreaterThanOrEqual(0.5);
     }
+  });
+
+  it('promises skill of every site, and plans an input that is there for a signal that is there', () => {
+    expect(Object.keys(LEAST_SKILL).sort()).toEqual(DEMO_SITES.map(({ name }) => name).sort());
+    for (const least of Object.values(LEAST_SKILL)) expect(least > 0.2 && least < 1).toBe(true);
+    const channels = DEMO_SITES.find(({ name }) => name === PLANNED_SITE)?.channels ?? [];
+    expect(channels.filter(({ isPlanned }) => isPlanned).map(({ name }) => name)).toEqual([PLANNED.input]);
+    expect(channels.find(({ name }) => name === PLANNED.signal)?.role).toBe('signal');
   });
 
   it('names a habit for every site, and only channels that are there in its faults', () => {
