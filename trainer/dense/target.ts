@@ -9,6 +9,9 @@ import type { Layout } from '../identify/ridge.ts';
 import type { DenseTarget } from '../quantise/dense.ts';
 import type { Learned } from '../quantise/quantise.ts';
 
+/** Share of what channels moving each by itself would give, added to the readings' own moments. */
+const ALONE_SHARE = 0.03;
+
 /**
  * The target of a learned map.
  *
@@ -31,7 +34,7 @@ export function denseTarget(
   const channels = Array.from({ length: nc }, (_, c) => c);
   const rows = channels.flatMap((c) => Array.from({ length: recursive }, (_, f) => c * F + f));
   return {
-    input: recursionInput(values, blocks, bank),
+    input: recursionInput(values, blocks, bank, ALONE_SHARE),
     layout: { ...layout, featureCount: featureCount({ ...bank, lags: [], hasLevel: false }) },
     map: pickRows(map, rows, width),
     levelMap: hasLevel

@@ -2,20 +2,21 @@
  * Second moments of a recursion x(t) = A x(t−1) + B Δ(t) run over the readings, and what it shares with the bank's
  * features. One pass runs the recursion and holds it against the next changes; all else solves Stein equations, as for
  * the bank itself: Σ s s' = F (Σ s s' + E) F' + F N G' + G N' F' + G D G' with N = Σ s(t−1) Δ(t)', D = Σ Δ Δ' and E what
- * lies at the blocks' two ends. So a recursion is tried at the price of a pass over few numbers.
+ * lies at the blocks' two ends. So a recursion is tried at the price of a pass over few numbers. To each product a share is
+ * added of what it would be were every channel to move by itself (alone-moments.ts).
  */
 import { solveStein } from '../linalg/lyapunov.ts';
 import type { ModalRecursion } from '../linalg/modal.ts';
 import { applyModes, type Modes, stepModes } from '../linalg/modes.ts';
 import { multiply, transpose } from '../linalg/products.ts';
+import { type AloneRun, addAlone, aheadAlone, laggedProducts } from './alone-moments.ts';
 import type { Bank } from './bank.ts';
 import { dotShifted } from './cross-steps.ts';
 import type { Block } from './moments.ts';
 import { flattenPoles } from './poles.ts';
 
 /** One run of a recursion: sums over the origins of all blocks. */
-interface Run {
-  readonly recursion: ModalRecursion;
+interface Run extends AloneRun {
   /** (blocks) of (n): one tick before the block's first origin, and at its last. */
   readonly before: readonly Float64Array[];
   readonly after: readonly Float64Array[];
@@ -23,13 +24,21 @@ interface Run {
   readonly ahead: Float64Array;
 }
 
-/** What every recursion over the same readings is held against. */
-export interface RecursionInput {
+/** What moves a recursion. */
+interface Excitation {
   readonly changes: readonly Float64Array[];
   readonly blocks: readonly Block[];
   readonly origins: number;
   /** (nc × nc) Σ Δ(t) Δ(t)'. */
   readonly together: Float64Array;
+  /** (nc) of (lags): Σ Δ_c(t) Δ_c(t + k). */
+  readonly lagged: readonly Float64Array[];
+  /** Share added of what channels moving each by itself would give. */
+  readonly aloneShare: number;
+}
+
+/** What every recursion over the same readings is held against. */
+export interface RecursionInput extends Excitation {
   /** The bank without level and lags. */
   readonly bank: Run;
   /** (p × p) mean products of the bank's features. */
@@ -97,19 +106,31 @@ export function bankRecursion(bank: Bank, channels: number): ModalRecursion {
  * source  file head
  * cost    O(T nc p)
  */
-export function recursionInput(values: readonly Float64Array[], blocks: readonly Block[], bank: Bank): RecursionInput {
+export function recursionInput(
+  values: readonly Float64Array[],
+  blocks: readonly Block[],
+  bank: Bank,
+  aloneShare: number,
+): RecursionInput {
   const nc = values.length;
   const changes = values.map((y) => Float64Array.from(y, (value, t) => (t === 0 ? 0 : value - y[t - 1])));
   const origins = blocks.reduce((sum, { fromIndex, toIndex }) => sum + toIndex - fromIndex, 0);
-  const run = runOver(bankRecursion(bank, nc), changes, blocks, new Float64Array(nc * perChannelOf(bank)));
+  const recursion = bankRecursion(bank, nc);
+  const together = summedProducts(changes, blocks);
+  const lagged = changes.map((change, c) => laggedProducts(change, recursion.modes, together[c * nc + c]));
+  const excitation = { changes, blocks, origins, together, lagged, aloneShare };
+  const run = runOver(recursion, excitation, new Float64Array(recursion.modes.size));
   const start = Float64Array.from(values, (y) => -y[0]);
-  const levels = runOver(levelRecursion(nc), changes, blocks, start);
-  const input = { changes, blocks, origins, together: summedProducts(changes, blocks), bank: run, levels };
+  const levels = runOver(levelRecursion(nc), excitation, start);
   return {
-    ...input,
-    covariance: products(input, run, run),
-    levelCovariance: summedProducts(values, blocks).map((sum) => sum / origins),
-    levelsWithBank: products(input, levels, run),
+    ...excitation,
+    bank: run,
+    levels,
+    covariance: products(excitation, run, run),
+    levelCovariance: summedProducts(values, blocks).map((sum, at) => {
+      return (sum * (at % (nc + 1) === 0 ? 1 + aloneShare : 1)) / origins;
+    }),
+    levelsWithBank: products(excitation, levels, run),
   };
 }
 
@@ -123,7 +144,7 @@ export function recursionInput(values: readonly Float64Array[], blocks: readonly
  * cost    O(T d nc) + O(d² + d p)
  */
 export function recursionMoments(input: RecursionInput, recursion: ModalRecursion): RecursionMoments {
-  const run = runOver(recursion, input.changes, input.blocks, new Float64Array(recursion.modes.size));
+  const run = runOver(recursion, input, new Float64Array(recursion.modes.size));
   return {
     covariance: products(input, run, run),
     withBank: products(input, run, input.bank),
@@ -166,11 +187,7 @@ function summedProducts(series: readonly Float64Array[], blocks: readonly Block[
 }
 
 /** Mean products of two runs' numbers at the origins, (left × right). */
-function products(
-  input: Pick<RecursionInput, 'changes' | 'origins' | 'together'>,
-  left: Run,
-  right: Run,
-): Float64Array {
+function products(input: Excitation, left: Run, right: Run): Float64Array {
   const nc = input.changes.length;
   const [n, m] = [left.recursion.modes.size, right.recursion.modes.size];
   const ends = new Float64Array(n * m);
@@ -192,6 +209,7 @@ function products(
   );
   const driven = multiply(multiply(left.recursion.drive, input.together, n, nc, nc), rightDrive, n, nc, m);
   for (let k = 0; k < known.length; k++) known[k] += ahead[k] + behind[k] + driven[k];
+  addAlone(left, right, input.together, input.aloneShare, known);
   return solveStein(left.recursion.modes, right.recursion.modes, known).map((sum) => sum / input.origins);
 }
 
@@ -209,12 +227,7 @@ function addOuter(into: Float64Array, a: Float64Array, b: Float64Array, sign: nu
 }
 
 /** Runs from the first reading on, through the gaps between blocks. */
-function runOver(
-  recursion: ModalRecursion,
-  changes: readonly Float64Array[],
-  blocks: readonly Block[],
-  start: Float64Array,
-): Run {
+function runOver(recursion: ModalRecursion, { changes, blocks, lagged }: Excitation, start: Float64Array): Run {
   const n = recursion.modes.size;
   const nc = changes.length;
   const drive = transpose(recursion.drive, n, nc);
@@ -242,7 +255,7 @@ function runOver(
   ahead.forEach((row, c) => {
     joined.set(row, c * n);
   });
-  return { recursion, before, after, ahead: transpose(joined, nc, n) };
+  return { recursion, before, after, ahead: transpose(joined, nc, n), alone: aheadAlone(recursion, lagged) };
 }
 
 function addScaled(into: Float64Array, what: Float64Array, by: number): void {

@@ -88,7 +88,7 @@ const expectClose = (got: Float64Array, expected: readonly number[]): void => {
 };
 
 describe('recursionMoments', () => {
-  const input = recursionInput(values, blocks, bank);
+  const input = recursionInput(values, blocks, bank, 0);
   const slow = runSlowly(recursion, [0, 0, 0, 0, 0]);
   const features = runSlowly(bankRecursion(bank, 3), new Array<number>(input.bank.recursion.modes.size).fill(0));
   const levels = Array.from({ length: 300 }, (_, t) => values.map((y) => -y[t]!));

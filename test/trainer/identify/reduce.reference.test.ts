@@ -20,7 +20,7 @@ const bank = { decays: [0.5, 0.8, 0.95], resonators: [[turn, turn] as const], la
 const layout = { channelCount: 2, signalCount: 2, featureCount: 5, steps: 2 };
 const apart = 1500;
 const values = [1, 1 + apart].map((at) => Float64Array.from({ length: 2 * apart }, (_, t) => (t >= at ? 1 : 0)));
-const input = recursionInput(values, [{ fromIndex: 1, toIndex: 2 * apart }], bank);
+const input = recursionInput(values, [{ fromIndex: 1, toIndex: 2 * apart }], bank, 0);
 const map = Float64Array.from({ length: 40 }, (_, at) => {
   const f = Math.floor(at / 4) + 1;
   const k = (at % 4) + 1;
