@@ -62,7 +62,7 @@ export function chooseKind(attempt: Attempt): KindChoice {
   for (const one of kinds) {
     const [linear] = candidates;
     if (one === 'dense' && linear !== undefined && !isTight(attempt, linear)) continue;
-    const candidate = KINDS[one](attempt);
+    const candidate = tryKind(attempt, one);
     if (candidate !== null) candidates.push(candidate);
   }
   if (candidates.length === 0) {
@@ -87,15 +87,26 @@ export function chooseKind(attempt: Attempt): KindChoice {
   return { candidate: candidates[smallest], tried };
 }
 
-/**
- * Errors without a plan; where inputs have plans, the geometric mean of those and of the errors under a true plan, since the
- * model will be asked for both.
- */
+/** Beside the linear kind, one whose numbers do not allow a model does not apply; asked for by name it says so. */
+function tryKind(attempt: Attempt, kind: Model['kind']): Candidate | null {
+  try {
+    return KINDS[kind](attempt);
+  } catch (error) {
+    const mayPass = attempt.options.kind === 'auto' && kind !== 'linear';
+    if (mayPass && error instanceof TrainError && error.code === 'fit') return null;
+    throw error;
+  }
+}
+
 /** Whether the linear kind had to be cut to fit: only then can a recursion say more in the same bytes. */
 function isTight(attempt: Attempt, linear: Candidate): boolean {
   return attempt.bytesLeft(linear.sections) < TIGHT * encode(linear.sections).length;
 }
 
+/**
+ * Errors without a plan; where inputs have plans, the geometric mean of those and of the errors under a true plan, since the
+ * model will be asked for both.
+ */
 function calibrationErrors(attempt: Attempt, candidate: Candidate): Float64Array {
   const { split, series, prepared, site } = attempt;
   const fromTick = split.calibrate.fromTick - series.firstTick;
