@@ -89,8 +89,8 @@ interface Soundings {
   of(size: DenseSize): number;
 }
 
-function soundings(target: DenseTarget, { values }: Balanced, cut: Cut, bytes: number): Soundings | null {
-  let most = Math.min(MOST_STATES, values.length);
+function soundings(target: DenseTarget, { values, rank }: Balanced, cut: Cut, bytes: number): Soundings | null {
+  let most = Math.min(MOST_STATES, rank);
   while (most > 1 && denseBytes(target, most, 1) > bytes) most--;
   const points: Sounding[] = [];
   let curves: Float64Array | null = null;

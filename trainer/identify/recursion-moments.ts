@@ -126,11 +126,11 @@ export function recursionInput(
     ...excitation,
     bank: run,
     levels,
-    covariance: products(excitation, run, run),
+    covariance: products(excitation, run, run, aloneShare),
     levelCovariance: summedProducts(values, blocks).map((sum, at) => {
       return (sum * (at % (nc + 1) === 0 ? 1 + aloneShare : 1)) / origins;
     }),
-    levelsWithBank: products(excitation, levels, run),
+    levelsWithBank: products(excitation, levels, run, 0),
   };
 }
 
@@ -146,9 +146,9 @@ export function recursionInput(
 export function recursionMoments(input: RecursionInput, recursion: ModalRecursion): RecursionMoments {
   const run = runOver(recursion, input, new Float64Array(recursion.modes.size));
   return {
-    covariance: products(input, run, run),
-    withBank: products(input, run, input.bank),
-    withLevels: products(input, run, input.levels),
+    covariance: products(input, run, run, input.aloneShare),
+    withBank: products(input, run, input.bank, input.aloneShare),
+    withLevels: products(input, run, input.levels, 0),
   };
 }
 
@@ -186,8 +186,11 @@ function summedProducts(series: readonly Float64Array[], blocks: readonly Block[
   return out;
 }
 
-/** Mean products of two runs' numbers at the origins, (left × right). */
-function products(input: Excitation, left: Run, right: Run): Float64Array {
+/**
+ * Mean products of two runs' numbers at the origins, (left × right). Levels, which forget nothing, are no stationary series:
+ * of channels that move alone they are taken to be apart from all else.
+ */
+function products(input: Excitation, left: Run, right: Run, aloneShare: number): Float64Array {
   const nc = input.changes.length;
   const [n, m] = [left.recursion.modes.size, right.recursion.modes.size];
   const ends = new Float64Array(n * m);
@@ -209,7 +212,7 @@ function products(input: Excitation, left: Run, right: Run): Float64Array {
   );
   const driven = multiply(multiply(left.recursion.drive, input.together, n, nc, nc), rightDrive, n, nc, m);
   for (let k = 0; k < known.length; k++) known[k] += ahead[k] + behind[k] + driven[k];
-  addAlone(left, right, input.together, input.aloneShare, known);
+  if (aloneShare > 0) addAlone(left, right, input.together, aloneShare, known);
   return solveStein(left.recursion.modes, right.recursion.modes, known).map((sum) => sum / input.origins);
 }
 

@@ -27,6 +27,8 @@ export interface Balanced {
   readonly energy: number;
   /** (p) Hankel singular values, falling. */
   readonly values: Float64Array;
+  /** Directions above the noise of the arithmetic; the largest order that means anything. */
+  readonly rank: number;
   /** (p × p) lower factor of the features' covariance. */
   readonly factor: Float64Array;
   /** (p × p) column k the k-th direction. */
@@ -49,6 +51,8 @@ const RAISED = 1e-9;
 const SILENT = 1e-6;
 /** A pole may forget this many times more slowly than the bank's slowest; beyond, it is drawn in. */
 const SLOWER = 4;
+/** Directions below this share of the first are noise of the arithmetic. */
+const LEAST_SHARE = 1e-6;
 /** An improvement below this share of the error ends the improving. */
 const LEAST_GAIN = 0.01;
 
@@ -72,13 +76,15 @@ export function balance(input: RecursionInput, map: Float64Array, layout: Layout
   const factor = cholesky(raised(input.covariance, p), p);
   const both = multiplyTransposed(factor, multiply(observed, factor, p, p, p), p, p, p);
   const { values, vectors } = symmetricEigen(symmetrised(both, p), p);
+  const hankel = values.map((value) => Math.sqrt(Math.max(0, value)));
   const excited = multiplyTransposed(factor, weighted, p, p, width);
   return {
     input,
     layout,
     map: weighted,
     energy: excited.reduce((sum, value) => sum + value * value, 0),
-    values: values.map((value) => Math.sqrt(Math.max(0, value))),
+    values: hankel,
+    rank: Math.max(1, hankel.filter((value) => value > LEAST_SHARE * hankel[0]).length),
     factor,
     directions: vectors,
   };
@@ -118,7 +124,7 @@ export function reduce(balanced: Balanced, order: number, rounds: number): Reduc
  * cost    as `reduce`, once more for each order without one
  */
 export function reduceUpTo(balanced: Balanced, order: number, rounds: number): Reduced | null {
-  for (let d = order; d > 0; d--) {
+  for (let d = Math.min(order, balanced.rank); d > 0; d--) {
     const reduced = reduce(balanced, d, rounds);
     if (reduced !== null) return reduced;
   }
