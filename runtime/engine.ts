@@ -33,6 +33,8 @@ export interface EngineOptions {
 
 /** Ticks kept to warm a new bundle with. */
 const RECENT_TICKS = 8192;
+/** Of these as many are forecast from as bounds need to settle: paths cost most of a tick, and meanwhile nothing else runs. */
+const RECENT_FORECASTS = 1024;
 /** An outage of more ticks than this is not bridged: the filter starts afresh behind it. */
 const MAX_GAP_TICKS = 50_000;
 
@@ -250,8 +252,11 @@ export class Engine {
 
   #warmed(checked: CheckedBundle): Serving {
     const serving = new Serving(checked);
+    const { horizon, warmupTicks } = checked.model;
+    let quiet = this.#recent.count - warmupTicks - Math.max(RECENT_FORECASTS, 8 * horizon);
     this.#recent.forEach((tick, values) => {
-      serving.step(tick, values);
+      if (quiet-- > 0) serving.fold(tick, values);
+      else serving.step(tick, values);
     });
     const next = this.aligner.nextTick;
     return serving.tick < 0 || serving.tick + 1 === next ? serving : new Serving(checked);

@@ -93,20 +93,28 @@ export class Serving {
 
   /** Folds one tick in: readings onto the lattice, forecast before, update, path, bounds. `readings` (nc) in units. */
   step(tick: number, readings: Float64Array): void {
-    const { model, lattice, predicted, state } = this;
+    const { model, predicted, state } = this;
     predictNext(model, state, predicted);
+    for (let c = 0; c < model.channelCount; c++) {
+      predicted[c] = (predicted[c]! - model.latticeOffset[c]!) / model.latticeStep[c]!;
+    }
+    this.fold(tick, readings);
+    this.replan();
+    trackBounds(model, this.bounds, state, this.median);
+  }
+
+  /** The same without forecasts and bounds: for ticks of the past that come before those which settle the bounds. */
+  fold(tick: number, readings: Float64Array): void {
+    const { model, lattice } = this;
     for (let c = 0; c < model.channelCount; c++) {
       const step = model.latticeStep[c]!;
       const offset = model.latticeOffset[c]!;
-      predicted[c] = (predicted[c]! - offset) / step;
       const index = latticeIndex(readings[c]!, step, offset);
       lattice[c] = Math.abs(index) <= MAX_INDEX ? index : Number.NaN;
       this.#values[c] = latticeValue(lattice[c]!, step, offset);
       this.isOutside[c] = this.#values[c]! < model.clipLow[c]! || this.#values[c]! > model.clipHigh[c]! ? 1 : 0;
     }
-    update(model, state, tick, this.#values);
-    this.replan();
-    trackBounds(model, this.bounds, state, this.median);
+    update(model, this.state, tick, this.#values);
   }
 
   /** Forecasts anew from where the filter stands, under the plans of now; what was issued before is tracked as it was. */
