@@ -157,7 +157,7 @@ function onePath(
   const { driven, pairFrom, doubt } = section;
   const n = driven.length;
   const { z, along, push, outlook, miss, low, high, sums } = rollout;
-  let mode = startMode(section, core, rollout.start[p]);
+  let mode = startMode(section, core, rollout, p);
   let dwell = core.memory[core.dwellAt];
   let stays = 0;
   let left = 1;
@@ -203,11 +203,12 @@ function onePath(
   }
 }
 
-function startMode(section: SwitchedSection, core: SwitchedCore, share: number): number {
+/** The path's number, not its share, is passed: a fraction passed on is put on the heap. */
+function startMode(section: SwitchedSection, core: SwitchedCore, { start }: Rollout, p: number): number {
   let sum = 0;
   for (let m = 0; m < section.modeCount; m++) {
     sum += core.memory[core.beliefAt + m];
-    if (share <= sum) return m;
+    if (start[p] <= sum) return m;
   }
   return core.memory[core.modeAt];
 }
