@@ -4,6 +4,7 @@ import {
   checkModel,
   createBounds,
   createState,
+  crossing,
   forecastPath,
   intervalOf,
   type Model,
@@ -60,6 +61,14 @@ class Run {
 
   forecast(plan: Float64Array | null = null): void {
     forecastPath(this.model, this.state, this.median, plan);
+  }
+
+  /** Chance and time of crossing two limits of the first signal, above and below what it usually is. */
+  crossings(): unknown[] {
+    const { model, bounds, state, median } = this;
+    return ([1, -1] as const).map((side) =>
+      crossing(model, bounds, state, median, 0, model.mean[0]! + side * model.scale[0]!, side > 0 ? 'above' : 'below'),
+    );
   }
 
   /** Everything that goes out or is kept, to the bit. */
@@ -151,6 +160,7 @@ describe.each(EVERY_KIND)('%s', (name) => {
       expect(hex(broken.savedState())).toBe(hex(whole.savedState()));
       broken.forecast();
       expect(bits(broken.median)).toBe(bits(whole.median));
+      if (n % 8 === 0) expect(broken.crossings()).toEqual(whole.crossings());
     }
   });
 
