@@ -3,6 +3,7 @@
  * one. A bundle that passes computes without reading past an array and without growing for ever.
  */
 import type {
+  AgreementTensors,
   Bundle,
   BundleChannel,
   BundleKind,
@@ -187,6 +188,15 @@ const checkUnitScales = (scales: Uint8Array): void => {
   }
 };
 
+const checkAgreement = (bundle: Bundle, agreement: AgreementTensors, signals: number): void => {
+  const { weights, offset, scale, limit } = agreement;
+  for (const [name, list] of Object.entries({ offset, scale, limit })) {
+    if (list.length !== signals)
+      refuse(`agreement.${name}`, `expected ${signals} numbers, one a signal, got ${list.length}`);
+  }
+  checkTensor(weights, signals, bundle.channels.length, QUANTISED, 'agreement.weights');
+};
+
 const checkGuard = ({ guard }: Bundle, signals: number): void => {
   const { stuck, rests, stuckActs } = guard;
   if (stuck === undefined && rests === undefined && stuckActs === undefined) return;
@@ -263,6 +273,7 @@ export const checkBundle = (bundle: Bundle): void => {
   if (bundle.response !== undefined) checkResponse(bundle, bundle.response, signals);
   if (bundle.round !== undefined) checkRound(bundle, bundle.round, signals);
   checkGuard(bundle, signals);
+  if (bundle.agreement !== undefined) checkAgreement(bundle, bundle.agreement, signals);
   checkSeasonal(bundle, signals);
   checkRadius(bundle, signals);
   checkJudge(bundle, signals);

@@ -141,6 +141,14 @@ export const roundSchema = z.strictObject({
   weight: z.array(z.number().min(0).max(1)).min(1).max(MAX_CHANNELS),
 });
 
+/** What the channels say of each other. */
+export const agreementSchema = z.strictObject({
+  weights: tensorSchema,
+  offset: z.array(z.number()).max(MAX_CHANNELS),
+  scale: z.array(z.number().min(0)).max(MAX_CHANNELS),
+  limit: z.array(z.number().min(0)).max(MAX_CHANNELS),
+});
+
 /** Where long gaps fade to. */
 export const seasonalSchema = z.strictObject({ periodTicks: count, table: tensorSchema });
 
@@ -222,6 +230,7 @@ export const bundleSchema = z.strictObject({
   driven: drivenSchema.optional(),
   response: responseSchema.optional(),
   round: roundSchema.optional(),
+  agreement: agreementSchema.optional(),
   seasonal: seasonalSchema,
   bounds: boundsSchema,
   guard: guardSchema,

@@ -125,6 +125,18 @@ export interface RoundPart {
   readonly weight: readonly number[];
 }
 
+/** What the channels say of each other, so that a sensor that drifts is told of. Standardised. */
+export interface AgreementTensors {
+  /** (ny × nc): a signal is Σ weight × z + offset of the other channels; nothing of itself. */
+  readonly weights: Tensor;
+  /** (ny) */
+  readonly offset: readonly number[];
+  /** (ny) standard deviation of the difference. */
+  readonly scale: readonly number[];
+  /** (ny) of the cumulative sum of differences; 0: the signal is not watched. */
+  readonly limit: readonly number[];
+}
+
 /** Kinds of model; each has sections of its own. */
 export const BUNDLE_KINDS = ['linear', 'dense', 'featured', 'switched', 'driven'] as const;
 
@@ -162,6 +174,8 @@ export interface Bundle {
   readonly response?: ResponseTensors | undefined;
   /** What a round ago is taken away before the kind sees a value; absent: nothing. */
   readonly round?: RoundPart | undefined;
+  /** Absent where the channels say too little of each other. */
+  readonly agreement?: AgreementTensors | undefined;
   readonly seasonal: SeasonalTable;
   readonly bounds: {
     readonly coverage: number;

@@ -105,6 +105,7 @@ function bundleWithoutProbe(parts: Composition): Bundle {
     channels: channelsOf(parts),
     ...sections,
     ...(parts.response === undefined ? {} : { response: parts.response }),
+    ...agreementOf(around, input.site.signals.length + input.site.inputs.length),
     seasonal: {
       periodTicks: season.periodTicks,
       table: quantiseTensor(season.means, signalCount, season.bins, 'i8'),
@@ -124,6 +125,19 @@ function bundleWithoutProbe(parts: Composition): Bundle {
     judge: parts.judge,
     // Float64 take nine bytes each whatever they are, but whole numbers less.
     probe: { seed: parts.options.seed, ticks: PROBE_TICKS, digest: EMPTY_DIGEST, last: new Array(horizon).fill(0.1) },
+  };
+}
+
+function agreementOf({ agreement, signalCount }: Surroundings, channelCount: number): Pick<Bundle, 'agreement'> {
+  if (agreement === null) return {};
+  const { weights, offset, scale, limit } = agreement;
+  return {
+    agreement: {
+      weights: quantiseTensor(weights, signalCount, channelCount, 'i16'),
+      offset: Array.from(offset),
+      scale: Array.from(scale),
+      limit: Array.from(limit),
+    },
   };
 }
 

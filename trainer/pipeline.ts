@@ -164,7 +164,10 @@ function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Pr
     options,
     around,
     sections,
-    calibration: openCalibration(around.scalings.length, around.signalCount * around.horizon),
+    calibration: {
+      ...openCalibration(around.scalings.length, around.signalCount * around.horizon),
+      stuck: { ...prepared.stuck, acts: true },
+    },
     judge: placeholderJudge(names, verdictSteps(around.horizon), MOST_RIVALS, options.override),
     learnedToTick: split.learn.toTick,
     settled: settledOf(split, settled),

@@ -2,7 +2,9 @@
  * What a model must be before anything is computed with it: shapes that agree, finite numbers, a memory that forgets.
  * Checked once, at the door, so that the kernels need no checks. What a kind adds, its kernel checks.
  */
+
 import { CROSSING_KNOTS, MAX_SNAPSHOT_BYTES } from '@stillwell/protocol';
+import { checkAgreement } from './agreement.ts';
 import { kernelOf } from './kernels.ts';
 import type { CommonModel, Model } from './model.ts';
 import { checkStuckGuard } from './repeats.ts';
@@ -25,6 +27,7 @@ export function checkModel(model: Model): void {
   kernelOf(model).check(model);
   checkShapes(model);
   checkChannels(model);
+  if (model.agreement !== undefined) checkAgreement(model, model.agreement);
   if (model.stuck !== undefined) checkStuckGuard(model, model.stuck);
   if (model.response !== undefined) checkResponse(model, model.response);
   if (model.round !== undefined) checkRound(model, model.round);

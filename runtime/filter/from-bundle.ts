@@ -1,5 +1,6 @@
 /** From a bundle's document to a model ready to compute with. */
 import {
+  type AgreementTensors,
   type Bundle,
   type DenseTensors,
   dequantise,
@@ -7,6 +8,7 @@ import {
   type ResponseTensors,
   type Tensor,
 } from '@stillwell/protocol';
+import type { Agreement } from './agreement.ts';
 import { checkModel } from './check.ts';
 import { FilterError } from './errors.ts';
 import { correctionOf, simulationOf } from './from-features.ts';
@@ -74,6 +76,7 @@ function commonOf(bundle: Bundle): Omit<CommonModel, 'order'> {
     rejectMaxTicks: bundle.guard.maxTicks,
     ...(bundle.guard.confirmsJumps === true ? { confirmsJumps: true } : {}),
     ...stuckOf(bundle.guard),
+    ...(bundle.agreement === undefined ? {} : { agreement: agreementOf(bundle.agreement) }),
     warmupTicks: bundle.warmupTicks,
     ...(bundle.response === undefined ? {} : { response: responseOf(bundle.response) }),
     ...(bundle.round === undefined
@@ -93,6 +96,15 @@ function responseOf(response: ResponseTensors): ResponseModel {
     readout: dequantise(response.readout),
     basis: dequantise(response.basis),
     surprise: Float64Array.from(response.surprise),
+  };
+}
+
+function agreementOf({ weights, offset, scale, limit }: AgreementTensors): Agreement {
+  return {
+    weights: dequantise(weights),
+    offset: Float64Array.from(offset),
+    scale: Float64Array.from(scale),
+    limit: Float64Array.from(limit),
   };
 }
 

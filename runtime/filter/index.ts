@@ -1,4 +1,6 @@
 /** The filter: from readings, tick by tick, to state, forecasts and bounds; the same arithmetic on gateway and trainer. */
+
+export { type Agreement, ALLOWANCE, disagreesWith, MOST_DIFFERENCE } from './agreement.ts';
 export { FEATURE_LIMIT } from './bank.ts';
 export { checkModel } from './check.ts';
 export { type Crossing, crossing } from './crossing.ts';

@@ -2,6 +2,7 @@
  * The immutable model, ready to compute with: dequantised once, shared by any number of states. What every kind has stands
  * in `CommonModel`; what a kind adds stands in its own interface, and its kernel (kernel.ts) alone reads that.
  */
+import type { Agreement } from './agreement.ts';
 import type { DrivenModel } from './driven-model.ts';
 import type { FeaturedModel } from './featured-model.ts';
 import type { StuckGuard } from './repeats.ts';
@@ -52,6 +53,8 @@ export interface CommonModel {
   /** Whether a second reading as far off as the one passed over before it is taken for a jump; absent: it is not. */
   readonly confirmsJumps?: boolean;
   readonly warmupTicks: number;
+  /** What the channels say of each other; absent: too little. */
+  readonly agreement?: Agreement;
   /** When a reading that repeats itself counts as missing; absent: never. */
   readonly stuck?: StuckGuard;
   /** What a plan of the inputs adds; absent: nothing, or the kind takes plans itself. */

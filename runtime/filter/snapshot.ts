@@ -12,7 +12,7 @@
  * | 20 | … | state: per channel started u8, passed u16, age u16, lean i16, then float64 value and what the kind keeps of the channel |
  * |    |   | (linear: memories, ring oldest first), and after the channels what it keeps of no channel alone; then the |
  * |    |   | last round of every signal that has one, oldest first; then, with a guard against sensors that hang, per signal |
- * |    |   | readings alike u16 and the reading float64 |
+ * |    |   | readings alike u16 and the reading float64; then, with agreement, the two sums of every signal, float64 |
  * |    |   | bounds: warmed u32, radius and, unless tracked as in the first bundles, stretch float64 (ny × scored steps each), |
  * |    |   | forecasts under way float32 as `Bounds.issued` |
  * | end − 4 | 4 | CRC-32 of all before |
@@ -48,9 +48,9 @@ function eachOfRounds({ round }: Model, state: FilterState, visit: (slot: number
   }
 }
 
-/** Ten bytes for each signal, with a guard against sensors that hang. */
-function repeatBytes({ stuck, signalCount }: Model): number {
-  return stuck === undefined ? 0 : 10 * signalCount;
+/** Bytes of what watches over sensors: ten a signal with a guard against those that hang, sixteen with agreement. */
+function watchBytes({ stuck, agreement, signalCount }: Model): number {
+  return (stuck === undefined ? 0 : 10 * signalCount) + (agreement === undefined ? 0 : 16 * signalCount);
 }
 
 /**
@@ -61,7 +61,7 @@ function repeatBytes({ stuck, signalCount }: Model): number {
 export function stateSize(model: Model): number {
   const { perChannel, shared } = kernelOf(model).memoryLayout(model);
   return (
-    HEAD + model.channelCount * (7 + 8 * (1 + perChannel)) + 8 * (shared + roundCount(model)) + repeatBytes(model) + 4
+    HEAD + model.channelCount * (7 + 8 * (1 + perChannel)) + 8 * (shared + roundCount(model)) + watchBytes(model) + 4
   );
 }
 
@@ -96,6 +96,7 @@ export function saveState(model: Model, state: FilterState): Uint8Array {
     view.setUint16(at, state.repeats[i], true);
     view.setFloat64(at + 2, state.repeated[i], true);
   }
+  at = putFloats(view, at, state.disagreement, 0, state.disagreement.length);
   view.setUint32(at, crc32(bytes, 0, at), true);
   return bytes;
 }
@@ -141,6 +142,8 @@ export function restoreState(model: Model, bytes: Uint8Array): FilterState {
     state.repeated[i] = view.getFloat64(at + 2, true);
     areFinite &&= Number.isFinite(state.repeated[i]);
   }
+  at = getFloats(view, at, state.disagreement, 0, state.disagreement.length);
+  areFinite &&= state.disagreement.every(Number.isFinite);
   if (!areFinite) throw refusal('state', 'memories', 'finite numbers', 'NaN or infinity');
   kernel.copyIn(model, state.core, -1, numbers, 0);
   if (model.round !== undefined) {
@@ -246,6 +249,7 @@ function fingerprint(model: Model): number {
     Float64Array.of(model.channelCount, model.signalCount, model.horizon, model.rejectMaxTicks, model.tickMs),
     ...kernelOf(model).fingerprint(model),
     ...(model.round === undefined ? [] : [Float64Array.of(model.round.ticks), model.round.weight]),
+    ...(model.agreement === undefined ? [] : [model.agreement.weights, model.agreement.limit]),
     ...(model.stuck === undefined ? [] : [Float64Array.from(model.stuck.ticks), ...model.stuck.rests]),
     model.mean,
     model.scale,

@@ -70,6 +70,8 @@ export interface FilterState {
   readonly repeats: Int32Array;
   /** (ny) the reading that they are, in units of the signal. */
   readonly repeated: Float64Array;
+  /** (2·ny) cumulative sums of what signals say above and below what the others say of them; empty without agreement. */
+  readonly disagreement: Float64Array;
   /** (nc) clips, standardised */
   readonly low: Float64Array;
   readonly high: Float64Array;
@@ -104,6 +106,7 @@ export function createState(model: Model): FilterState {
     response: model.response === undefined ? null : createResponseBuffers(model, model.response),
     repeats: new Int32Array(model.stuck === undefined ? 0 : model.signalCount),
     repeated: new Float64Array(model.stuck === undefined ? 0 : model.signalCount),
+    disagreement: new Float64Array(model.agreement === undefined ? 0 : 2 * model.signalCount),
     low: standardised(model.clipLow),
     high: standardised(model.clipHigh),
   };

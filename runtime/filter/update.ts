@@ -3,6 +3,7 @@
  * forecast, and taken, unless it lies absurdly far away; a missing one is replaced by that forecast (zero innovation),
  * which costs far less accuracy than holding the last value. Whatever the readings are, every number stays finite.
  */
+import { watchAgreement } from './agreement.ts';
 import { FilterError } from './errors.ts';
 import { predictStandardised } from './forecast.ts';
 import { kernelOf } from './kernels.ts';
@@ -42,6 +43,7 @@ export function update(model: Model, state: FilterState, tick: number, readings:
   }
   state.tick = tick;
   kernel.refresh(model, state.core, state);
+  if (model.agreement !== undefined) watchAgreement(model, model.agreement, state);
 }
 
 function observe(model: Model, state: FilterState, c: number, tick: number, readings: Float64Array): void {

@@ -1,10 +1,10 @@
 /**
  * How far a forecast may be trusted, as a status letter in the sense of NAMUR NE 107: C while the filter warms up or
  * catches up, S where a reading lies outside what the bundle was trained on or a plan in use proved wrong, M where readings
- * are missing or repeat themselves. F, no usable model, is said in health: without a model nothing is forecast.
+ * are missing, repeat themselves or part from what other channels say. F, no usable model, is said in health: without a model nothing is forecast.
  */
 import type { Quality } from '@stillwell/protocol';
-import { standsStill } from '@stillwell/runtime/filter';
+import { disagreesWith, standsStill } from '@stillwell/runtime/filter';
 import type { Serving } from '../serving.ts';
 
 /** A letter and its reason. */
@@ -40,6 +40,12 @@ export function judge(
       return bad(
         'M',
         `${channels[i]!.name}: the same reading ${serving.state.repeats[i]} times, more than ever by nature`,
+      );
+    const other = disagreesWith(serving.model, serving.state, i);
+    if (other >= 0)
+      return bad(
+        'M',
+        `${channels[i]!.name}: no longer agrees with ${channels[other]!.name}; one of them drifts, or the plant has changed`,
       );
     const age = serving.state.age[i]!;
     if (age >= STALE_TICKS) return bad('M', `${channels[i]!.name}: no reading for ${age} ticks or more`);

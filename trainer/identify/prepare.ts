@@ -8,6 +8,7 @@ import { channelsOf } from '../history/channels.ts';
 import type { Series } from '../history/series.ts';
 import type { Surroundings } from '../quantise/float-model.ts';
 import type { Split } from '../requirements.ts';
+import { learnAgreement } from './agreement.ts';
 import { type Excursion, findExcursions, withoutExcursions } from './excursions.ts';
 import { type Filled, fillHistory, type PartEnds } from './fill.ts';
 import type { LearnInput } from './learn.ts';
@@ -73,6 +74,7 @@ export function prepareHistory(
       lattices,
       season: seasonOf(filled, series.signalCount, series.firstTick, learnTicks, period),
       warmupTicks: Math.max(2 * site.horizon, period, 32),
+      agreement: learnAgreement(filled, series.signalCount, learnTicks, calibrateTicks),
     },
     calm,
     filled,

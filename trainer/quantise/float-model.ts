@@ -2,7 +2,7 @@
  * A model to compute with, from learned factors, before there is a bundle: for calibration, and for the audit.
  */
 import { CROSSING_KNOTS } from '@stillwell/protocol';
-import type { CommonModel, LinearModel, Round, StuckGuard } from '@stillwell/runtime/filter';
+import type { Agreement, CommonModel, LinearModel, Round, StuckGuard } from '@stillwell/runtime/filter';
 import { type Bank, featureCount } from '../identify/bank.ts';
 import type { Scaling } from '../identify/scaling.ts';
 import type { Season } from '../identify/season.ts';
@@ -21,6 +21,8 @@ export interface Surroundings {
   readonly coverage: number;
   readonly boundsRate: number;
   readonly warmupTicks: number;
+  /** What the channels say of each other; null: too little. */
+  readonly agreement: Agreement | null;
   /** For kinds whose kernel sees what is left of a round; null: none. */
   readonly round: Round | null;
 }
@@ -111,6 +113,7 @@ export function commonPart(around: Surroundings, calibration: Calibration): Omit
     rejectMaxTicks: calibration.rejectMaxTicks,
     confirmsJumps: true,
     warmupTicks: around.warmupTicks,
+    ...(around.agreement === null ? {} : { agreement: around.agreement }),
     ...(calibration.boundsLongRate === undefined ? {} : { boundsLongRate: calibration.boundsLongRate }),
     ...(calibration.crossingMap === undefined ? {} : { crossingMap: calibration.crossingMap }),
     ...(calibration.crossingFresh === undefined ? {} : { crossingFresh: calibration.crossingFresh }),
