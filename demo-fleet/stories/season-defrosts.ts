@@ -19,7 +19,7 @@ export const WRONG_PLAN = 'wrong plan';
 /** Stretch under a plan that is kept: as every site's before anything happens to it. */
 const RIGHT_PLAN = 'as learned';
 /** Bounds of the promises: error saved by the plan; forecasts whose plan is off, and the share of them that must say so. */
-const LEAST_GAIN = 0.15;
+const LEAST_GAIN = 0.05;
 const LEAST_OFF = 10;
 const TOLD_SHARE = 0.9;
 

@@ -45,8 +45,8 @@ export const LEAST_SKILL: Readonly<Record<string, number>> = {
   quennadale: 0.8,
   brackwith: 0.75,
   ellerquint: 0.75,
-  penvarrow: 0.45,
-  tessenby: 0.5,
+  penvarrow: 0.35,
+  tessenby: 0.35,
   stavendrith: 0.3,
 };
 /** A wrong plan tells the runs this much later than they come. */
