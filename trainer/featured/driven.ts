@@ -4,6 +4,7 @@
  */
 import type { Attempt, Candidate } from '../kinds/candidate.ts';
 import { type DrivenParts, drivenModel, drivenSection } from './driven-parts.ts';
+import { type Effort, type Planned, planEffort } from './effort.ts';
 import {
   averageRun,
   chooseSetting,
@@ -24,8 +25,8 @@ const MOST_TICKS = 5000;
 const MOST_SIGNALS = 4;
 const MOST_INPUTS = 8;
 const HIDDEN_COUNTS = [0, 1, 2] as const;
-const MEMBERS = 5;
-const ITERATIONS = 40;
+/** Learned once more, members may see so many times the ticks that the search did. */
+const MOST_AGAIN = 2;
 /** Share of the signals' variance on held-out time that the linear simulation must explain. */
 const LEAST_EXPLAINED = 0.6;
 
@@ -36,7 +37,7 @@ const LEAST_EXPLAINED = 0.6;
  * units   standardised
  * throws  nothing of its own
  * source  random features in a state space fitted on its free run, averaged over draws
- * cost    some thirty member fits
+ * cost    as effort.ts plans it; a few linear simulations where the inputs do not explain the signals
  */
 export function tryDriven(attempt: Attempt): Candidate | null {
   const { prepared, around } = attempt;
@@ -44,17 +45,21 @@ export function tryDriven(attempt: Attempt): Candidate | null {
   const { learnTicks, calibrateTicks } = prepared;
   if (nu < 1 || nu > MOST_INPUTS || around.signalCount > MOST_SIGNALS || learnTicks > MOST_TICKS) return null;
   if (around.scalings.slice(around.signalCount).every(({ isConstant }) => isConstant)) return null;
-  const record = recordOf(attempt, learnTicks + calibrateTicks);
-  const learn = { ...record, to: learnTicks };
+  const planned = planEffort(around.signalCount, nu, HIDDEN_COUNTS, learnTicks);
+  if (planned === null) return null;
+  const { effort, mostTicks } = planned;
+  const record = recordOf(attempt, learnTicks - mostTicks, learnTicks + calibrateTicks);
+  const learnTo = mostTicks;
+  const learn = { ...record, to: learnTo };
   const range = sensorRange(learn);
   const starts = HIDDEN_COUNTS.map((count) => fitLinearStart(learn, count)).filter((start) => start !== null);
-  if (!starts.some((start) => explains(start, record, learnTicks))) return null;
+  if (!starts.some((start) => explains(start, record, learnTo))) return null;
   // A hidden state too many may never forget where it began; fewer are tried then.
   for (let left = starts; left.length > 0; ) {
-    const choice = chooseSetting(record, learnTicks, left, range);
+    const choice = chooseSetting(record, learnTo, left, range, effort);
     if (choice === null) return null;
-    const parts = learnedParts(attempt, choice.setting, record, range);
-    if (parts !== null) return candidateOf(attempt, parts);
+    const parts = learnedParts(attempt, choice.setting, record, range, planned);
+    if (parts !== null) return candidateOf(attempt, parts, planned);
     left = left.filter(({ shape }) => shape.hiddenCount < choice.setting.hiddenCount);
   }
   return null;
@@ -66,11 +71,11 @@ function learnedParts(
   setting: Setting,
   record: DrivenRecord,
   range: SensorRange,
+  { effort, mostTicks: learnTicks }: Planned,
 ): DrivenParts | null {
-  const { learnTicks } = attempt.prepared;
   const { horizon } = attempt.around;
   const learn = { ...record, to: learnTicks };
-  const members = membersOf(learn, setting, attempt.options.seed);
+  const members = membersOf(learn, setting, attempt.options.seed, effort);
   const run = averageRun(members, record, range);
   const times = fadingTimes(horizon, learnTicks);
   return partsOf(attempt, setting, members, learn, {
@@ -97,7 +102,7 @@ function partsOf(
   return settleTicks === null ? null : { ...draft, settleTicks };
 }
 
-function candidateOf(attempt: Attempt, parts: DrivenParts): Candidate | null {
+function candidateOf(attempt: Attempt, parts: DrivenParts, planned: Planned): Candidate | null {
   const sections = { kind: 'driven' as const, driven: drivenSection(parts) };
   if (attempt.bytesLeft(sections) < 0) return null;
   const { setting, members } = parts;
@@ -110,18 +115,19 @@ function candidateOf(attempt: Attempt, parts: DrivenParts): Candidate | null {
     sections,
     settled: { members: members.length, hidden: hiddenCount, features: featureCount, width, penalty },
     again(ticks) {
-      const record = recordOf(attempt, ticks);
-      const more = partsOf(attempt, setting, membersOf(record, setting, parts.seed), record, parts);
-      return (more === null ? null : candidateOf(attempt, more)) ?? (candidateOf(attempt, parts) as Candidate);
+      const record = recordOf(attempt, Math.max(0, ticks - MOST_AGAIN * planned.mostTicks), ticks);
+      const more = partsOf(attempt, setting, membersOf(record, setting, parts.seed, planned.effort), record, parts);
+      const again = more === null ? null : candidateOf(attempt, more, planned);
+      return again ?? (candidateOf(attempt, parts, planned) as Candidate);
     },
   };
 }
 
-function membersOf(record: DrivenRecord, setting: Setting, seed: number): Member[] {
+function membersOf(record: DrivenRecord, setting: Setting, seed: number, effort: Effort): Member[] {
   const start = fitLinearStart(record, setting.hiddenCount);
   if (start === null) return [];
-  const seeds = Array.from({ length: MEMBERS }, (_, k) => seed + k);
-  return fitMembers(record, start, setting, seeds, ITERATIONS);
+  const seeds = Array.from({ length: effort.members }, (_, k) => seed + k);
+  return fitMembers(record, start, setting, seeds, effort.iterations);
 }
 
 function explains(start: LinearStart, record: DrivenRecord, learnTo: number): boolean {
@@ -144,15 +150,17 @@ function variance({ signals, to }: DrivenRecord, from: number): number {
   return total / count;
 }
 
-/** The first `ticks` ticks: readings as they stood, inputs completed. */
-function recordOf({ prepared, around }: Attempt, ticks: number): DrivenRecord {
+/** Ticks from `start` to before `end`, counted from the first of them: readings as they stood, inputs completed. */
+function recordOf({ prepared, around }: Attempt, start: number, end: number): DrivenRecord {
   const { values, isRead } = prepared.filled;
   const ny = around.signalCount;
   return {
-    signals: values.slice(0, ny).map((z, i) => z.map((value, t) => (isRead[i][t] === 1 ? value : Number.NaN))),
-    inputs: values.slice(ny),
+    signals: values
+      .slice(0, ny)
+      .map((z, i) => z.slice(start, end).map((value, t) => (isRead[i][start + t] === 1 ? value : Number.NaN))),
+    inputs: values.slice(ny).map((u) => u.slice(start, end)),
     from: 0,
-    to: ticks,
+    to: end - start,
   };
 }
 

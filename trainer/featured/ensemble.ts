@@ -3,6 +3,7 @@
  * ranks single draws poorly, so outputs are averaged, and settings are compared by averages too.
  */
 import { drawFeatures } from '@stillwell/runtime/filter';
+import type { Effort } from './effort.ts';
 import {
   type DrivenRecord,
   freeRun,
@@ -130,11 +131,7 @@ export function runError(run: readonly Float64Array[], record: DrivenRecord, fro
 }
 
 /** Wide and heavily penalised: beyond what was learned, narrow features lead anywhere. */
-const FIRST_TRY: Omit<Setting, 'hiddenCount'> = { featureCount: 40, width: 8, penalty: 1 };
-const WIDTHS = [3, 5] as const;
-const PENALTIES = [0.1, 10] as const;
-const TRIAL_SEEDS = [101, 102] as const;
-const TRIAL_ITERATIONS = 15;
+const FIRST_TRY = { width: 8, penalty: 1 } as const;
 /** Features are taken at all only for this gain on the best linear simulation … */
 const LEAST_GAIN = 0.1;
 /** … and a hidden state more only for this one, in squared error. */
@@ -147,22 +144,24 @@ const HIDDEN_GAIN = 0.1;
  * units   standardised
  * throws  nothing
  * source  one setting changed at a time, from one that is seldom bad
- * cost    about nine pairs of member fits
+ * cost    as the effort says
  */
 export function chooseSetting(
   record: DrivenRecord,
   learnTo: number,
   starts: readonly LinearStart[],
   range: SensorRange,
+  effort: Effort,
 ): { readonly setting: Setting; readonly start: LinearStart; readonly error: number } | null {
   const learn = { ...record, to: learnTo };
+  const { featureCount, widths, penalties, trialSeeds, trialIterations } = effort;
   const attempt = (start: LinearStart, setting: Setting): Tried => {
-    const members = fitMembers(learn, start, setting, TRIAL_SEEDS, TRIAL_ITERATIONS);
+    const members = fitMembers(learn, start, setting, trialSeeds, trialIterations);
     return { setting, start, error: runError(averageRun(members, record, range), record, learnTo) };
   };
   let best: Tried | null = null;
   for (const start of starts) {
-    const tried = attempt(start, { ...FIRST_TRY, hiddenCount: start.shape.hiddenCount });
+    const tried = attempt(start, { ...FIRST_TRY, featureCount, hiddenCount: start.shape.hiddenCount });
     if (best === null || tried.error < best.error * (1 - HIDDEN_GAIN)) best = tried;
   }
   const linear = starts.map((start) =>
@@ -170,12 +169,12 @@ export function chooseSetting(
   );
   if (best === null || !(best.error < Math.min(...linear) * (1 - LEAST_GAIN))) return null;
   let at: Tried = best;
-  for (const width of WIDTHS) {
+  for (const width of widths) {
     const tried = attempt(at.start, { ...(best as Tried).setting, width });
     if (tried.error < at.error) at = tried;
   }
   const middle = at;
-  for (const penalty of PENALTIES) {
+  for (const penalty of penalties) {
     const tried = attempt(at.start, { ...middle.setting, penalty });
     if (tried.error < at.error) at = tried;
   }

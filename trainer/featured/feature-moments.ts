@@ -3,6 +3,7 @@
  * are small algebra.
  */
 import { SUMMARY_LIMIT, scaledFeatures } from '@stillwell/runtime/filter';
+import { addLowerGram } from '../linalg/gram.ts';
 import type { Origins } from './origins.ts';
 
 /** What the features see, and how many there are. */
@@ -56,7 +57,7 @@ export function gatherFeatures(origins: Origins, setting: FeatureSetting, from: 
   for (let start = from; start < to; start += BLOCK) {
     const rows = Math.min(BLOCK, to - start);
     for (let k = 0; k < rows; k++) evaluate(start + k, block, k * D);
-    addGram(moments.gram, block, rows, D);
+    addLowerGram(moments.gram, block, rows, D);
     for (let k = 0; k < rows; k++) {
       const aim = (start + k) * m;
       for (let j = 0; j < D; j++) {
@@ -114,25 +115,6 @@ function writeSummary({ states, folded, at }: Origins, setting: FeatureSetting, 
 
 function clipped(value: number): number {
   return Math.max(-SUMMARY_LIMIT, Math.min(SUMMARY_LIMIT, value));
-}
-
-/** Lower triangle of Φ'Φ of a block, four rows at a time. */
-function addGram(gram: Float64Array, block: Float64Array, rows: number, D: number): void {
-  block.fill(0, rows * D);
-  for (let k = 0; k < rows; k += 4) {
-    const r0 = k * D;
-    for (let a = 0; a < D; a++) {
-      const f0 = block[r0 + a];
-      const f1 = block[r0 + D + a];
-      const f2 = block[r0 + 2 * D + a];
-      const f3 = block[r0 + 3 * D + a];
-      const row = a * D;
-      for (let b = 0; b <= a; b++) {
-        gram[row + b] +=
-          f0 * block[r0 + b] + f1 * block[r0 + D + b] + f2 * block[r0 + 2 * D + b] + f3 * block[r0 + 3 * D + b];
-      }
-    }
-  }
 }
 
 function emptyMoments(D: number, m: number): Omit<FeatureMoments, 'origins'> {

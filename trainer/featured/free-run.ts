@@ -8,6 +8,7 @@
  * one-step map alone, which drifts when it feeds on itself. Not for the gateway: there, runtime/filter/driven.ts runs.
  */
 import { DRIVEN_STATE_LIMIT } from '@stillwell/runtime/filter';
+import { addLowerGram } from '../linalg/gram.ts';
 import type { LeastSquares, Linearised } from './levenberg-marquardt.ts';
 
 /** Sizes of one member. n = signalCount + hiddenCount. */
@@ -36,6 +37,9 @@ export interface DrivenRecord {
   readonly from: number;
   readonly to: number;
 }
+
+/** Rows of sensitivities whose products are added together. */
+const BLOCK = 16;
 
 /** Where the parts of a member's parameters start: L (n × (n + nu + 1)), then W (n × D), then x(from) (n). */
 export function parameterLayout(shape: MemberShape): {
@@ -132,15 +136,22 @@ export function freeRunProblem(
     const gradient = new Float64Array(count);
     let sensitivity = new Float64Array(states * count);
     let next = new Float64Array(states * count);
+    const block = new Float64Array(BLOCK * count);
     for (let i = 0; i < states; i++) sensitivity[i * count + startAt + i] = 1;
     run.start(parameters);
     let sum = 0;
+    let rows = 0;
     for (let t = record.from; t < record.to; t++) {
       for (let i = 0; i < shape.signalCount; i++) {
         const error = run.x[i] - record.signals[i][t];
         if (Number.isNaN(error)) continue;
         sum += error * error;
-        addProduct(normal, gradient, sensitivity, i * count, count, error);
+        const row = sensitivity.subarray(i * count, (i + 1) * count);
+        for (let p = 0; p < count; p++) gradient[p] += row[p] * error;
+        block.set(row, rows++ * count);
+        if (rows < BLOCK) continue;
+        addLowerGram(normal, block, rows, count);
+        rows = 0;
       }
       run.readInputs(record, t);
       run.stepWithSlopes(parameters);
@@ -148,6 +159,7 @@ export function freeRunProblem(
       [sensitivity, next] = [next, sensitivity];
       if (!run.isInside()) return { cost: Number.POSITIVE_INFINITY, normal, gradient };
     }
+    addLowerGram(normal, block, rows, count);
     for (let k = gainAt; k < startAt; k++) {
       normal[k * count + k] += penalty;
       gradient[k] += penalty * parameters[k];
@@ -155,24 +167,6 @@ export function freeRunProblem(
     return { cost: 0.5 * sum + penaltyCost(parameters), normal, gradient };
   };
   return { cost, linearise };
-}
-
-function addProduct(
-  normal: Float64Array,
-  gradient: Float64Array,
-  sensitivity: Float64Array,
-  from: number,
-  count: number,
-  error: number,
-): void {
-  const row = sensitivity.subarray(from, from + count);
-  for (let a = 0; a < count; a++) {
-    const s = row[a];
-    if (s === 0) continue;
-    gradient[a] += s * error;
-    const at = a * count;
-    for (let b = 0; b <= a; b++) normal[at + b] += s * row[b];
-  }
 }
 
 /** S(t+1) = (∂f/∂x) S(t) + ∂f/∂θ. */

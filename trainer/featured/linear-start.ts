@@ -5,7 +5,7 @@
  */
 import { cholesky, solveCholesky } from '../linalg/cholesky.ts';
 import { type DrivenRecord, freeRunProblem, type MemberShape, parameterLayout, stateRun } from './free-run.ts';
-import { minimise } from './levenberg-marquardt.ts';
+import { type Minimum, minimise } from './levenberg-marquardt.ts';
 
 /** A fitted member without features. */
 export interface LinearStart {
@@ -19,6 +19,8 @@ export const NO_FEATURES = { frequencies: new Float64Array(0), phases: new Float
 /** Speeds a hidden average starts at, per tick; several of them where there are several hidden states. */
 const DECAYS = [0.5, 0.8, 0.94, 0.985] as const;
 const ITERATIONS = 40;
+/** After so many the best of several starts alone goes on. */
+const FIRST_ITERATIONS = 20;
 /** Share of the trace that keeps the regression solvable where inputs are copies. */
 const REGRESSION_RIDGE = 1e-8;
 
@@ -39,13 +41,14 @@ export function fitLinearStart(record: DrivenRecord, hiddenCount: number): Linea
     featureCount: 0,
   };
   const problem = freeRunProblem(shape, NO_FEATURES, record, 0);
-  let best: LinearStart | null = null;
+  let first: Minimum | null = null;
   for (const decays of combinations(hiddenCount)) {
-    const start = startFrom(record, shape, decays);
-    const { parameters, cost } = minimise(problem, start, ITERATIONS);
-    if (Number.isFinite(cost) && (best === null || cost < best.cost)) best = { shape, parameters, cost };
+    const tried = minimise(problem, startFrom(record, shape, decays), FIRST_ITERATIONS);
+    if (Number.isFinite(tried.cost) && (first === null || tried.cost < first.cost)) first = tried;
   }
-  return best === null ? null : { ...best, parameters: normalised(best, record) };
+  if (first === null) return null;
+  const { parameters, cost } = minimise(problem, first.parameters, ITERATIONS - FIRST_ITERATIONS);
+  return { shape, cost, parameters: normalised({ shape, cost, parameters }, record) };
 }
 
 /** Rising choices of `count` of the decays. */
