@@ -51,7 +51,8 @@ export function chooseRound(input: LearnInput, tickMs: number): Round | null {
     let gain = 0;
     const weight = Float64Array.from(signals, (i) => {
       const hasPattern = patternShare(input, i, ticks) >= LEAST_PATTERN;
-      const plain = ownErrors(input, i, null, ticks, hasPattern);
+      // With a round of no weight, so that the origins are those that a round has, whose gaps show twice.
+      const plain = ownErrors(input, i, { ticks, weight: Float64Array.of(0) }, ticks, hasPattern);
       const tried = WEIGHTS.map((w) => ({
         w,
         ...ownErrors(input, i, { ticks, weight: Float64Array.of(w) }, ticks, hasPattern),
@@ -90,38 +91,45 @@ function roundsWorthTrying(input: LearnInput, tickMs: number): number[] {
  */
 function patternShare({ filled, learnTicks }: LearnInput, signal: number, ticks: number): number {
   const z = filled.values[signal];
+  // What stands in a long gap was filled in by phase, and would count as a pattern.
+  const isSeen = (t: number): boolean => filled.inLongGap[t] === 0 && filled.inLongGap[t - 1] === 0;
+  let seen = 0;
   const sums = new Float64Array(ticks);
   const counts = new Float64Array(ticks);
   let mean = 0;
   for (let t = 1; t < learnTicks; t++) {
+    if (!isSeen(t)) continue;
     sums[t % ticks] += z[t] - z[t - 1];
     counts[t % ticks]++;
-    mean += (z[t] - z[t - 1]) / (learnTicks - 1);
+    mean += z[t] - z[t - 1];
+    seen++;
   }
+  mean /= Math.max(1, seen);
   let total = 0;
   let left = 0;
   for (let t = 1; t < learnTicks; t++) {
+    if (!isSeen(t)) continue;
     const change = z[t] - z[t - 1];
     const phase = sums[t % ticks] / counts[t % ticks];
     total += (change - mean) * (change - mean);
     left += (change - phase) * (change - phase);
   }
   // R² adjusted for the number of means (Theil 1961).
-  return total > 0 ? 1 - left / Math.max(1, learnTicks - 1 - ticks) / (total / (learnTicks - 2)) : 0;
+  return total > 0 ? 1 - left / Math.max(1, seen - ticks) / (total / (seen - 1)) : 0;
 }
 
 /** Errors by fold of one signal's own map on what is left of it, from the origins after `skip` ticks. */
 function ownErrors(
   input: LearnInput,
   signal: number,
-  round: Round | null,
+  round: Round,
   skip: number,
   hasPattern: boolean,
 ): { readonly errors: number[]; readonly weights: number[] } {
   const { filled, horizon, learnTicks, calibrateTicks, periodTicks } = input;
   const wish = { periodTicks, otherPeriods: [], horizon, learnTicks, channelCount: 1 };
   const bank: Bank = { ...designBank(wish), lags: [], hasLevel: false };
-  const { values, inLongGap } = restOf(filled, round, signal);
+  const { values, inLongGap } = withoutRound({ ...filled, values: [filled.values[signal]] }, round, 1);
   const settle = skip + Math.min(settlingTicks(bank), Math.floor(learnTicks / 8));
   const cut = partition(learnTicks, calibrateTicks, settle, horizon, inLongGap);
   const blocks = cut.groups.flat();
@@ -154,11 +162,6 @@ function withoutTrend(moments: Moments): Moments {
   const { origins, futureSums } = moments;
   const energy = moments.energy.map((sum, k) => sum - (futureSums[k] * futureSums[k]) / origins);
   return { ...aboutMeans(moments), energy };
-}
-
-function restOf(filled: Filled, round: Round | null, signal: number): Pick<Filled, 'values' | 'inLongGap'> {
-  const alone = { ...filled, values: [filled.values[signal]] };
-  return round === null ? alone : withoutRound(alone, round, 1);
 }
 
 /**
