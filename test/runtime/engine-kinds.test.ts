@@ -52,9 +52,13 @@ class Life {
 
   constructor(kinds: readonly KindName[]) {
     this.site = siteOf(kinds[0]!);
-    this.models = kinds.map((name) => modelFromBundle(bundleOfKind(name)));
+    // The later bundle forecasts less far ahead: it need not be of the horizon before.
+    const choices = kinds.map((_, k) => (k > 0 ? { horizon: 20 } : {}));
+    this.models = kinds.map((name, k) => modelFromBundle(bundleOfKind(name, choices[k])));
     this.readings = readingsOfKind(kinds[0]!, this.models[0]!, TICKS, 23);
-    this.#sealed = kinds.map((name, k) => sealBundle(documentOfKind(name), { epoch: 1, sequence: k + 1 }, [author]));
+    this.#sealed = kinds.map((name, k) =>
+      sealBundle(documentOfKind(name, choices[k]), { epoch: 1, sequence: k + 1 }, [author]),
+    );
   }
 
   start(): void {
