@@ -59,7 +59,7 @@ describe('fit and hindcast', () => {
 
   it('cuts the history where it is told, and learns nothing from beyond', async () => {
     const { at, site, history } = plant();
-    const asked = ['--site', site, '--history', history, '--until', '2024-02-01', '--json'];
+    const asked = ['--site', site, '--history', history, '--until', '2024-02-01', '--kind', 'linear', '--json'];
     const result = JSON.parse(await run(fitCommand(), ...asked, '--out', at('out'))) as { bytes: number };
     const bundle = decodeBundle(readFileSync(at('out/candidate.swc')));
     expect(bundle.provenance.ticks).toBe(31 * 24);
@@ -100,7 +100,7 @@ describe('refusals', () => {
 
   it('names the difference between bundle and site, and a history that ends too soon', async () => {
     const { at, site, history } = plant();
-    await run(fitCommand(), '--site', site, '--history', history, '--out', at('out'));
+    await run(fitCommand(), '--site', site, '--history', history, '--kind', 'linear', '--out', at('out'));
     const bundle = ['--bundle', at('out/candidate.swc'), '--history', history];
     writeFileSync(at('other.yaml'), formatSite(hourlySite(['level', 'head'], 12)));
     expect(await refused(hindcastCommand(), ...bundle, '--site', at('other.yaml'))).toMatch(/other readings .*head/);
