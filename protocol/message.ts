@@ -14,8 +14,9 @@ import { formatPath } from './path.ts';
 import { ADVISORY, MESSAGE_FORMAT } from './version.ts';
 
 /**
- * Status letters in the sense of NAMUR NE 107: F failure (no model, diverged), C function check (warming up, replay),
- * S out of specification (outside the trained range), M maintenance required (stale model, clock unsure, drift).
+ * Status letters in the sense of NAMUR NE 107: F failure (no model serves), C function check (warming up, catching up),
+ * S out of specification (outside the trained range, a plan that proved wrong), M maintenance required (readings that stay
+ * away, repeat themselves or drift, a disk that takes nothing, a clock that was set back).
  */
 export type Quality = 'F' | 'C' | 'S' | 'M';
 
