@@ -2,7 +2,8 @@
  * Forecasts from the state: the path of the kind's kernel, faded and clipped. A signal without readings for longer than F =
  * fadeTicks fades to its seasonal mean: with `age` the ticks since its last reading, the distance to that mean keeps its
  * size up to age F and falls linearly to nothing at age 2F, because iterating a fitted recursion without readings need
- * not be stable. Step 1 of the path is the number that stands in for a missing reading at the next tick.
+ * not be stable. Step 1 of the path is the number that stands in for a missing reading at the next tick, but for a signal that
+ * stands still: its path leans on the standing reading (repeats.ts), its stand-in does not.
  */
 import { kernelOf } from './kernels.ts';
 import type { CommonModel, Model } from './model.ts';
@@ -112,8 +113,8 @@ export function predictStandardised(model: Model, state: FilterState, out: Float
 }
 
 /**
- * Forecast of the next tick for every channel: signals by the model, the same number as step 1 of the path without a plan;
- * inputs by their last value. What a missing reading will be replaced by.
+ * Forecast of the next tick for every channel: signals by the model, the same number as step 1 of the path without a plan
+ * unless the signal stands still; inputs by their last value. What a missing reading will be replaced by.
  *
  * shapes  out (nc)
  * units   of the channel
