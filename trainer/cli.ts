@@ -40,6 +40,12 @@ const program = new Command('stillwell')
   .exitOverride();
 for (const command of commands) program.addCommand(adopt(command(), program));
 
+// Whoever reads our output may have seen enough (`stillwell show … | head`): no error of ours.
+process.stdout.on('error', (error: NodeJS.ErrnoException) => {
+  if (error.code !== 'EPIPE') throw error;
+  process.exit();
+});
+
 try {
   await program.parseAsync();
 } catch (error) {
