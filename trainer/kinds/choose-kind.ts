@@ -51,7 +51,7 @@ export interface KindChoice {
  *
  * shapes  as Attempt
  * units   as Attempt
- * throws  TrainError 'fit' if the kind asked for does not apply; what the kinds throw
+ * throws  TrainError 'options' if the kind asked for does not apply; 'fit' from the linear kind, or the one asked for
  * source  own choice
  * cost    one fit and one replay of the calibration part a kind
  */
