@@ -23,7 +23,7 @@ export const limitOutlookSchema = z.strictObject({
   time: instantSchema.nullable(),
 });
 
-/** What stands for an input ahead: a plan, what the past says of it, or its last value. */
+/** What stands for an input ahead: a plan, what the past says of it, or its last value (led on by the driven kind itself). */
 export const INPUT_USES = ['planned', 'expected', 'held'] as const;
 /** One of them. */
 export type InputUse = (typeof INPUT_USES)[number];

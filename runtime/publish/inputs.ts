@@ -51,7 +51,7 @@ function useOf(serving: Serving, site: Site, planFromMs: number | null, input: n
   const { model, tick } = serving;
   const endMs = (tick + model.horizon + 1) * site.tickMs;
   if (planFromMs !== null && planFromMs < endMs && reaches(model, input)) return 'planned';
-  // Every kind but the driven one learned what the past says of its inputs; that one needs a value and takes the last.
+  // Every kind but the driven one learned what the past says of its inputs; that one leads their last values on by itself.
   return model.kind === 'driven' ? 'held' : 'expected';
 }
 
