@@ -5,6 +5,7 @@
 import { type Bundle, decodeBundle, encodeBundle, MAX_SIGNATURES } from '@stillwell/protocol';
 import { type Model, modelFromBundle } from '@stillwell/runtime/filter';
 import { type Composition, composeBundle, documentBytes, judgeTable, placeholderJudge } from './compose.ts';
+import { TrainError } from './errors.ts';
 import type { FitInput, FitOptions } from './fit-options.ts';
 import type { Series } from './history/series.ts';
 import { bankName, featureCount } from './identify/bank.ts';
@@ -81,6 +82,8 @@ const SETTLED_ROOM = 160;
 const SIGNED_BYTES = 56 + MAX_SIGNATURES * 72;
 /** Step of the gateway's quantile tracker; measured to hold weekly coverage on real records. */
 const BOUNDS_RATE = 0.05;
+/** Said where learning once more from everything failed. */
+const NOT_FROM_ALL = 'From all ticks no model of this size could be solved for, so the one judged goes out as it is.';
 /** Rivals a hindcast has at most; their names and skills take bytes. */
 const MOST_RIVALS = 6;
 
@@ -119,7 +122,8 @@ export async function fit(input: FitInput, options: FitOptions): Promise<FitResu
   clock.lap('finding what the forecasts rest on');
   const rest = reliance(modelFromBundle(small.bundle), input.series, indices(split.judged, input.series));
   clock.lap('writing the candidate');
-  const parts = options.useAll ? learnFromAll(input.series, prepared, small) : small.parts;
+  const all = options.useAll ? learnFromAll(input.series, prepared, small) : null;
+  const parts = all ?? small.parts;
   const document = encodeBundle(composeBundle({ ...parts, judge: judgeTable(cast, verdicts, options.override) }));
   const bundle = decodeBundle(document);
   return Object.freeze({
@@ -134,7 +138,12 @@ export async function fit(input: FitInput, options: FitOptions): Promise<FitResu
     chosen: chosenOf(small.choice, prepared, taught),
     reliance: rest,
     planWorth: worth,
-    warnings: [...prepared.warnings, ...taught.warnings, ...small.plans.warnings],
+    warnings: [
+      ...prepared.warnings,
+      ...taught.warnings,
+      ...small.plans.warnings,
+      ...(options.useAll && all === null ? [NOT_FROM_ALL] : []),
+    ],
     timings: clock.laps(),
   });
 }
@@ -204,13 +213,21 @@ function auditRounding(small: Small, cast: Hindcast, series: Series, split: Spli
   return { floatMse, quantisedMse, ratio: floatMse > 0 ? quantisedMse / floatMse : 1 };
 }
 
-/** Learns once more from every tick, at the size and penalties already judged; bounds stay as calibrated. */
-function learnFromAll(series: Series, prepared: Prepared, { choice, parts, plans }: Small): Composition {
-  const again = choice.candidate.again(series.ticks);
-  const { response } = learnPlans(again, prepared, series.ticks, plans.response === null ? [] : plans.planned);
-  const learnedToTick = series.firstTick + series.ticks;
-  const around = { ...parts.around, scalings: scalingsForAll(prepared, parts.input.site) };
-  return { ...parts, around, sections: again.sections, response: response?.tensors, learnedToTick };
+/**
+ * Learns once more from every tick, at the size and penalties already judged; bounds stay as calibrated. Null where the
+ * numbers of all ticks allow no model: what was judged is still good.
+ */
+function learnFromAll(series: Series, prepared: Prepared, { choice, parts, plans }: Small): Composition | null {
+  try {
+    const again = choice.candidate.again(series.ticks);
+    const { response } = learnPlans(again, prepared, series.ticks, plans.response === null ? [] : plans.planned);
+    const learnedToTick = series.firstTick + series.ticks;
+    const around = { ...parts.around, scalings: scalingsForAll(prepared, parts.input.site) };
+    return { ...parts, around, sections: again.sections, response: response?.tensors, learnedToTick };
+  } catch (error) {
+    if (error instanceof TrainError && error.code === 'fit') return null;
+    throw error;
+  }
 }
 
 /** Goes into the provenance: what `hindcast` needs to know of the split, and what was chosen. */
