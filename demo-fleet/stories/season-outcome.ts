@@ -66,7 +66,7 @@ export async function gatherOutcome(inputs: Inputs): Promise<Omit<StoryResult, '
       'fleet',
       'wells whose pumps were found: switched kind',
       sites.filter((site) => site.isWell && site.bundles[0].bundle.kind === 'switched').length,
-      [1, Number.POSITIVE_INFINITY],
+      [2, Number.POSITIVE_INFINITY],
     ),
     expectExactly('fleet', 'every message of a gateway can be read', fleet.unreadable.length, 0),
   ];

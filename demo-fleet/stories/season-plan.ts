@@ -42,12 +42,12 @@ export const PLANNED = { input: 'defrost', signal: 'room' } as const;
  * when somebody comes, which nothing foretells, the less so the larger a share of its heat comes in by them.
  */
 export const LEAST_SKILL: Readonly<Record<string, number>> = {
-  quennadale: 0.8,
-  brackwith: 0.75,
-  ellerquint: 0.75,
-  penvarrow: 0.35,
-  tessenby: 0.35,
-  stavendrith: 0.3,
+  quennadale: 0.84,
+  brackwith: 0.78,
+  ellerquint: 0.78,
+  penvarrow: 0.4,
+  tessenby: 0.4,
+  stavendrith: 0.35,
 };
 /** A wrong plan tells the runs this much later than they come. */
 export const PLAN_LATE_MS = 76 * 60_000;
