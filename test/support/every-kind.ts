@@ -70,14 +70,14 @@ export function documentOfKind(name: KindName, choice: ModelChoice = {}): Uint8A
 }
 
 /** A round for the first signal, half of one for the second. */
-export function withRound(bundle: Bundle): Bundle {
+function withRound(bundle: Bundle): Bundle {
   const signals = bundle.channels.filter(({ role }) => role === 'signal').length;
   const weight = Array.from({ length: signals }, (_, i) => [1, 0.5, 0][i % 3]!);
   return { ...bundle, round: { ticks: ROUND_TICKS, weight } };
 }
 
 /** Guards against jumps and sensors that hang, and bounds as newer bundles track them. */
-export function guarded(bundle: Bundle): Bundle {
+function guarded(bundle: Bundle): Bundle {
   const signals = bundle.channels.filter(({ role }) => role === 'signal');
   return {
     ...bundle,
