@@ -43,7 +43,7 @@ describe('denseTarget', () => {
         for (let f = 0; f < 2; f++) now[c * F + f] = target.map[(2 * c + f) * steps + h]!;
         now[c * F + 2] = target.levelMap![c * steps + h]!;
       });
-      if (h < 6) [3, 4].forEach((f, k) => (now[f] = target.lagged[2 * h + k]!));
+      if (h < 6) now.set(target.lagged.subarray(2 * h, 2 * h + 2), 3);
       const lost = now.map((value, f) => map[f * steps + h]! - value);
       for (const row of kept) {
         const together = lost.reduce((sum, value, f) => sum + value * covariance[row * p + f]!, 0);
