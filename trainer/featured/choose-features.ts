@@ -24,8 +24,8 @@ const GROUPS = 6;
 const FIRST_FOLD = 3;
 /** Features of a first look. */
 const TRIAL_COUNT = 96;
-/** Origins that choose. */
-const TRIAL_ORIGINS = 2400;
+/** Origins that choose; more of them need not be gathered for it. */
+export const TRIAL_ORIGINS = 2400;
 /**
  * Leading predictive states beside the values, each scaled by what it carries of the forecast to some power: 0 gives all of
  * them one width, 1 measures pasts by how far apart their linear forecasts are.
@@ -55,7 +55,7 @@ const COUNTS = [256, 512, 1024] as const;
 const MOST_CHANNELS = 8;
 /** Twice as many features are taken only for this gain … */
 const COUNT_GAIN = 0.03;
-/** … and features at all only for that one, on the first look and at the end. */
+/** … and features at all only for that one at the end, and half of it on the first look. */
 const LEAST_GAIN = 0.01;
 
 /** What a choice stands on beside the origins. */
@@ -84,7 +84,7 @@ export function chooseFeatures(all: Origins, input: ChoiceInput): FeatureChoice 
   const first = firstSettings(origins, input)
     .map(attempt)
     .sort((a, b) => a.mean - b.mean);
-  if (first.length === 0 || !(first[0].mean < geometricMean(without) * (1 - LEAST_GAIN / 2))) return null;
+  if (first.length === 0 || !gainsSurely(first[0].errors, without, LEAST_GAIN / 2)) return null;
   const wide = first
     .slice(0, FINALISTS)
     .flatMap(({ setting }) =>

@@ -6,10 +6,10 @@ import { dequantise, type FeatureTensors, quantiseTensor } from '@stillwell/prot
 import { type FeaturedModel, type LinearModel, scaledFeatures } from '@stillwell/runtime/filter';
 import type { Attempt, Candidate } from '../kinds/candidate.ts';
 import { linearOfSize, tryLinear } from '../kinds/linear.ts';
-import { chooseFeatures, type FeatureChoice } from './choose-features.ts';
+import { chooseFeatures, type FeatureChoice, TRIAL_ORIGINS } from './choose-features.ts';
 import { type Correction, correctionError, reduceMap, ridgeFeatures, roundingOf } from './correction.ts';
 import { type FeatureMap, type FeatureMoments, gatherFeatures } from './feature-moments.ts';
-import { gatherOrigins, type Origins, onModelCurves } from './origins.ts';
+import { gatherOrigins, MOST_ORIGINS, type Origins, onModelCurves } from './origins.ts';
 
 /** Share of the bytes kept for the correction. */
 const CORRECTION_SHARE = 0.5;
@@ -28,7 +28,7 @@ const PENALTIES_UP = [1, 10, 100] as const;
  * units   standardised
  * throws  TrainError 'fit' from the linear kind and the solves
  * source  random features: Rahimi and Recht (2007)
- * cost    a replay of the record, and about a dozen passes of features
+ * cost    a replay of the record, and some ten passes of few features; where those gain, about a dozen of more
  */
 export function tryFeatured(attempt: Attempt): Candidate | null {
   const { prepared } = attempt;
@@ -37,7 +37,8 @@ export function tryFeatured(attempt: Attempt): Candidate | null {
   const reserve = Math.floor(CORRECTION_SHARE * free);
   const plain = linearPart(attempt, reserve);
   const model = plain.rounded as LinearModel;
-  const origins = originsOf(attempt, model, prepared.learnTicks + prepared.calibrateTicks);
+  const ticks = prepared.learnTicks + prepared.calibrateTicks;
+  const origins = originsOf(attempt, model, ticks, TRIAL_ORIGINS);
   if (origins.at.length < LEAST_ORIGINS) return null;
   const most = Math.floor(reserve / 4);
   const choice = chooseFeatures(origins, {
@@ -50,8 +51,8 @@ export function tryFeatured(attempt: Attempt): Candidate | null {
   return candidateOf(attempt, plain, choice, prepared.learnTicks);
 }
 
-function originsOf({ prepared }: Attempt, model: LinearModel, ticks: number): Origins {
-  return gatherOrigins(model, prepared.calm, prepared.filled, { fromTick: 0, toTick: ticks });
+function originsOf({ prepared }: Attempt, model: LinearModel, ticks: number, most = MOST_ORIGINS): Origins {
+  return gatherOrigins(model, prepared.calm, prepared.filled, { fromTick: 0, toTick: ticks }, most);
 }
 
 function candidateOf(attempt: Attempt, plain: Candidate, choice: FeatureChoice, ticks: number): Candidate | null {
@@ -70,10 +71,15 @@ function candidateOf(attempt: Attempt, plain: Candidate, choice: FeatureChoice, 
       most = Math.min(correction.count - 1, Math.floor(correction.count + left / setting.count));
       continue;
     }
+    let float: FeaturedModel | null = null;
     return {
       kind: 'featured',
       name: `${plain.name}; ${correction.count} corrections from ${setting.count} random features of ${setting.scale.length} numbers`,
-      float: floatOf(attempt, plain.float as LinearModel, choice, ticks, correction.count),
+      // Made when asked for: it takes as long as all the rest, and only the kind chosen is held against it.
+      get float() {
+        float ??= floatOf(attempt, plain.float as LinearModel, choice, ticks, correction.count);
+        return float;
+      },
       rounded: modelOf(rounded, choice, correction, dequantise(section.readout)),
       sections,
       settled: settledOf(choice, rounded),

@@ -25,7 +25,7 @@ export interface Origins {
 }
 
 /** More than this do not sharpen a few hundred weights, and cost time … */
-const MOST_ORIGINS = 8000;
+export const MOST_ORIGINS = 8000;
 /** … nor may all their paths take more numbers than this. */
 const MOST_NUMBERS = 8_000_000;
 /** Of the mean squared remainder: steps that the linear map all but knows do not outweigh the others. */
@@ -40,9 +40,15 @@ const LEAST_SQUARE = 0.1;
  * source  weighted least squares over the horizon
  * cost    one replay, a path an origin
  */
-export function gatherOrigins(model: LinearModel, series: Series, filled: Filled, span: TickSpan): Origins {
+export function gatherOrigins(
+  model: LinearModel,
+  series: Series,
+  filled: Filled,
+  span: TickSpan,
+  mostOrigins: number,
+): Origins {
   const { signalCount: ny, horizon: H, order: d } = model;
-  const most = Math.min(MOST_ORIGINS, MOST_NUMBERS / (ny * H));
+  const most = Math.min(mostOrigins, MOST_NUMBERS / (ny * H));
   const every = Math.max(1, Math.ceil((span.toTick - span.fromTick) / most));
   const at = usableOrigins(filled, span, H, every);
   const states = new Float64Array(at.length * d);

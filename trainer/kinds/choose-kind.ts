@@ -19,8 +19,8 @@ import { tryLinear } from './linear.ts';
 const KINDS: Readonly<Record<Model['kind'], TryKind>> = {
   linear: tryLinear,
   dense: tryDense,
-  featured: tryFeatured,
   switched: trySwitched,
+  featured: tryFeatured,
   driven: tryDriven,
 };
 
@@ -29,6 +29,9 @@ const TIE = 0.002;
 
 /** A bundle with less than this share of its tensors left over was cut to fit. */
 const TIGHT = 0.05;
+
+/** Features are not tried, which takes long, where modes leave less than this share of the linear kind's squared error. */
+const SERVED_BY_MODES = 0.5;
 
 /** One kind's result, for people. */
 export interface Tried {
@@ -59,9 +62,13 @@ export function chooseKind(attempt: Attempt): KindChoice {
   const { kind } = attempt.options;
   const kinds = kind === 'auto' ? (Object.keys(KINDS) as Model['kind'][]) : [kind];
   const candidates: Candidate[] = [];
+  const errorsOf = rememberedErrors(attempt);
+  const errorOf = (candidate: Candidate): number => ratio(errorsOf(candidate), errorsOf(candidates[0]));
   for (const one of kinds) {
     const [linear] = candidates;
     if (one === 'dense' && linear !== undefined && !isTight(attempt, linear)) continue;
+    const switched = candidates.find((candidate) => candidate.kind === 'switched');
+    if (one === 'featured' && switched !== undefined && errorOf(switched) < SERVED_BY_MODES) continue;
     const candidate = tryKind(attempt, one);
     if (candidate !== null) candidates.push(candidate);
   }
@@ -74,17 +81,26 @@ export function chooseKind(attempt: Attempt): KindChoice {
       },
     );
   }
-  const errors = candidates.length === 1 ? [] : candidates.map((candidate) => calibrationErrors(attempt, candidate));
-  const tried = candidates.map((candidate, k) => ({
+  const tried = candidates.map((candidate) => ({
     kind: candidate.kind,
     name: candidate.name,
     bytes: encode(candidate.sections).length,
-    error: errors.length === 0 ? 1 : ratio(errors[k], errors[0]),
+    error: candidates.length === 1 ? 1 : errorOf(candidate),
   }));
   const least = Math.min(...tried.map(({ error }) => error));
   const good = tried.flatMap(({ error }, k) => (error <= least * (1 + TIE) ? [k] : []));
   const smallest = good.reduce((best, k) => (tried[k].bytes < tried[best].bytes ? k : best));
   return { candidate: candidates[smallest], tried };
+}
+
+/** A candidate's errors, replayed once. */
+function rememberedErrors(attempt: Attempt): (candidate: Candidate) => Float64Array {
+  const known = new Map<Candidate, Float64Array>();
+  return (candidate) => {
+    const errors = known.get(candidate) ?? calibrationErrors(attempt, candidate);
+    known.set(candidate, errors);
+    return errors;
+  };
 }
 
 /** Beside the linear kind, one whose numbers do not allow a model does not apply; asked for by name it says so. */
