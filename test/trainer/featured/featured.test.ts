@@ -10,9 +10,9 @@ import { chaoticSeries, linearSeries } from './support.ts';
 describe('a chaotic plant', () => {
   let attempt: Attempt;
   let candidate: Candidate | null;
-  const judged = { fromTick: 2000, toTick: 2500 };
+  const judged = { fromTick: 1200, toTick: 1500 };
   beforeAll(() => {
-    attempt = attemptOf(chaoticSeries(2500), 8, 1e-4);
+    attempt = attemptOf(chaoticSeries(1500), 8, 1e-4);
     candidate = tryFeatured(attempt);
   });
 
@@ -36,5 +36,5 @@ describe('a chaotic plant', () => {
 });
 
 test('a linear plant gets no features', () => {
-  expect(tryFeatured(attemptOf(linearSeries(2000), 8, 1e-3))).toBeNull();
+  expect(tryFeatured(attemptOf(linearSeries(1500), 8, 1e-3))).toBeNull();
 });
