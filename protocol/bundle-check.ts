@@ -225,10 +225,23 @@ const checkRadius = (bundle: Bundle, signals: number): void => {
   const values = dequantise(bundle.bounds.radius);
   const at = values.findIndex((value) => value < 0);
   if (at >= 0) refuse('bounds.radius', `element ${at}: expected a half-width >= 0, got ${values[at]}`);
-  const { crossing = [] } = bundle.bounds;
-  const falls = crossing.findIndex((share, k) => share < (crossing[k - 1] ?? 0));
-  if (falls >= 0)
-    refuse('bounds.crossing', `element ${falls}: expected no less than the one before, got ${crossing[falls]}`);
+  const { crossing = [], crossingBySignal } = bundle.bounds;
+  checkRising(crossing, 'bounds.crossing');
+  if (crossingBySignal === undefined) return;
+  if (crossingBySignal.length !== signals) {
+    refuse('bounds.crossingBySignal', `expected ${signals} entries, got ${crossingBySignal.length}`);
+  }
+  for (const [i, own] of crossingBySignal.entries()) {
+    checkRising(own?.percent ?? [], `bounds.crossingBySignal[${i}].percent`);
+    if (own !== null && own.high < own.low) {
+      refuse(`bounds.crossingBySignal[${i}]`, `expected high not below low, got ${own.low} and ${own.high}`);
+    }
+  }
+};
+
+const checkRising = (shares: readonly number[], where: string): void => {
+  const falls = shares.findIndex((share, k) => share < (shares[k - 1] ?? 0));
+  if (falls >= 0) refuse(where, `element ${falls}: expected no less than the one before, got ${shares[falls]}`);
 };
 
 const checkJudge = (bundle: Bundle, signals: number): void => {

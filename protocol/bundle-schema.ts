@@ -160,6 +160,18 @@ export const boundsSchema = z.strictObject({
   longRate: z.number().positive().max(100).optional(),
   crossing: z.array(z.number().min(0).max(1)).length(CROSSING_KNOTS.length).optional(),
   crossingFresh: z.number().positive().max(1).optional(),
+  crossingBySignal: z
+    .array(
+      z
+        .strictObject({
+          low: z.int().min(-1e6).max(1e6),
+          high: z.int().min(-1e6).max(1e6),
+          percent: z.array(z.int().min(0).max(100)).length(CROSSING_KNOTS.length),
+        })
+        .nullable(),
+    )
+    .max(MAX_CHANNELS)
+    .optional(),
 });
 
 /** When a reading is passed over. */

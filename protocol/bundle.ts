@@ -189,6 +189,13 @@ export interface Bundle {
     readonly crossing?: readonly number[] | undefined;
     /** Share of the one-step error's spread that is new at every later step, when crossings are reckoned. Absent: 1. */
     readonly crossingFresh?: number | undefined;
+    /**
+     * As `crossing`, in whole hundredths, for one signal each and its limits from low to high, in tenths of its scale from
+     * its mean; null: the signal has none of its own.
+     */
+    readonly crossingBySignal?:
+      | readonly ({ readonly low: number; readonly high: number; readonly percent: readonly number[] } | null)[]
+      | undefined;
   };
   /** Readings further than rejectSd × residualScale from their forecast are passed over, at most maxTicks in a row. */
   readonly guard: {

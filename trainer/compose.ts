@@ -116,6 +116,18 @@ function bundleWithoutProbe(parts: Composition): Bundle {
       rate: around.boundsRate,
       ...(calibration.boundsLongRate === undefined ? {} : { longRate: calibration.boundsLongRate }),
       ...(calibration.crossingMap === undefined ? {} : { crossing: Array.from(calibration.crossingMap) }),
+      ...(calibration.crossingMaps === undefined || calibration.crossingMaps.every((map) => map === null)
+        ? {}
+        : {
+            crossingBySignal: calibration.crossingMaps.map(
+              (own) =>
+                own && {
+                  low: Math.round(10 * own.low),
+                  high: Math.round(10 * own.high),
+                  percent: Array.from(own.map, (share) => Math.round(100 * share)),
+                },
+            ),
+          }),
       ...(calibration.crossingFresh === undefined ? {} : { crossingFresh: calibration.crossingFresh }),
     },
     guard: guardOf(calibration),

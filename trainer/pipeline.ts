@@ -174,7 +174,7 @@ function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Pr
     around,
     sections,
     calibration: {
-      ...openCalibration(around.scalings.length, around.signalCount * around.horizon),
+      ...openCalibration(around.scalings.length, around.signalCount * around.horizon, around.signalCount),
       stuck: { ...prepared.stuck, acts: true },
     },
     judge: placeholderJudge(names, verdictSteps(around.horizon), MOST_RIVALS, options.override),

@@ -39,6 +39,10 @@ export function checkModel(model: Model): void {
   const { boundsLongRate: longRate = 0 } = model;
   requireField(longRate >= 0 && longRate <= 100, 'boundsLongRate', '0 to 100', longRate);
   checkCrossingMap(model.crossingMap);
+  if (model.crossingMaps !== undefined) {
+    requireLength(model.crossingMaps, 'crossingMaps', model.signalCount);
+    for (const own of model.crossingMaps) checkCrossingMap(own?.map);
+  }
   const { crossingFresh: fresh = 1 } = model;
   requireField(fresh > 0 && fresh <= 1, 'crossingFresh', 'more than 0 and at most 1', fresh);
   requireField(

@@ -10,12 +10,17 @@
  * such chains over 60 steps differs by at most 0.06 (tested); the largest chance of any single step, which is the naive
  * answer, is short by a factor of two and more.
  *
+ * Where a kind draws paths, as of a plant that fills and is pumped down, it is the time of the turn that is not known, and
+ * the path forecast, a mean of paths out of phase, goes nowhere near the turn. Each drawn path then has a chain of its own,
+ * with what the paths' spread leaves of the variance, and the chances are averaged.
+ *
  * Real errors are no such chain. Where the bundle says how often limits were crossed when this or that probability was said,
- * on history the model did not learn from, what is said is put right by it (`crossingMap`).
+ * on history the model did not learn from, what is said is put right by it (`crossingMaps`, `crossingMap`).
  */
 import { CROSSING_KNOTS } from '@stillwell/protocol';
 import { type Bounds, radiiOf } from './interval.ts';
-import type { CommonModel } from './model.ts';
+import { kernelOf } from './kernels.ts';
+import type { CommonModel, Model } from './model.ts';
 import { normalCdf, normalDensity } from './normal-table.ts';
 import type { FilterState } from './state.ts';
 
@@ -29,17 +34,18 @@ export interface Crossing {
 
 /** Chance of staying below under which nothing more can be learned; keeps the division by it tame. */
 const LEAST_CHANCE = 1e-9;
+const NOWHERE = new Float64Array(0);
 
 /**
  * Probability of crossing a limit, from the path and the bounds as they stand.
  *
- * shapes  median (ny × H), as forecastPath wrote it for this state
+ * shapes  median (ny × H), as forecastPath wrote it last for this state
  * units   median and limit in the signal's unit
  * source  truncated normal moments: Johnson, Kotz and Balakrishnan (1994), Continuous Univariate Distributions 1, 13.10
- * cost    O(H); allocates only its answer
+ * cost    O(H) for each drawn path; allocates only its answer
  */
 export function crossing(
-  model: CommonModel,
+  model: Model,
   bounds: Bounds,
   state: FilterState,
   median: Float64Array,
@@ -48,19 +54,65 @@ export function crossing(
   side: 'above' | 'below',
 ): Crossing {
   const H = model.horizon;
-  const sign = side === 'above' ? 1 : -1;
+  const { scratch, crossed } = bounds;
   const perRadius = 1 / bounds.quantile;
-  radiiOf(model, bounds, state, signal, bounds.scratch, 0);
-  const fresh = (model.crossingFresh ?? 1) * bounds.radius[signal * H] * perRadius;
+  radiiOf(model, bounds, state, signal, scratch, 0);
+  for (let h = 0; h < H; h++) scratch[h] *= perRadius;
+  const oneStep = bounds.radius[signal * H] * perRadius;
+  const fresh = (model.crossingFresh ?? 1) * oneStep;
+  crossed.fill(0);
+  const { draws } = kernelOf(model);
+  const place = draws === undefined ? -1 : draws.place(model, signal);
+  if (draws === undefined || place < 0) {
+    addChain(model, bounds, median, NOWHERE, -1, 1, fresh, signal, limit, side);
+  } else {
+    const away = draws.away(state.core);
+    leaveOwn(scratch, oneStep, away, place * draws.count, draws.count);
+    for (let p = 0; p < draws.count; p++) {
+      const row = (place * draws.count + p) * H;
+      addChain(model, bounds, median, away, row, 1 / draws.count, fresh, signal, limit, side);
+    }
+  }
+  let step: number | null = null;
+  for (let h = 0; h < H && step === null; h++) if (observedShare(model, signal, limit, crossed[h]) > 0.5) step = h + 1;
+  return { probability: observedShare(model, signal, limit, crossed[H - 1]), step };
+}
+
+/** Takes the variance between the drawn paths out of each step's; a one-step error's is left, where there is as much. */
+function leaveOwn(sds: Float64Array, oneStep: number, away: Float64Array, firstRow: number, count: number): void {
+  const H = sds.length;
+  for (let h = 0; h < H; h++) {
+    let between = 0;
+    for (let p = firstRow; p < firstRow + count; p++) between += away[p * H + h] * away[p * H + h];
+    const own = Math.sqrt(Math.max(0, sds[h] * sds[h] - between / count));
+    sds[h] = Math.max(own, Math.min(oneStep, sds[h]));
+  }
+}
+
+/** Adds `weight` times the chance of having crossed by each step to bounds.crossed, for the path at `row` of `away`. */
+function addChain(
+  model: CommonModel,
+  { scratch, crossed }: Bounds,
+  median: Float64Array,
+  away: Float64Array,
+  row: number,
+  weight: number,
+  fresh: number,
+  signal: number,
+  limit: number,
+  side: 'above' | 'below',
+): void {
+  const H = model.horizon;
+  const sign = side === 'above' ? 1 : -1;
   let stayed = 1;
   let largest = 0;
   let mean = 0;
   let variance = 0;
   let before = 1;
-  let step: number | null = null;
   for (let h = 1; h <= H; h++) {
-    const sd = bounds.scratch[h - 1] * perRadius;
-    const room = (sign * (limit - median[signal * H + h - 1])) / model.scale[signal];
+    const sd = scratch[h - 1];
+    const off = (limit - median[signal * H + h - 1]) / model.scale[signal];
+    const room = sign * (row < 0 ? off : off - away[row + h - 1]);
     const kept = h === 1 ? 0 : Math.max(0, 1 - (fresh * fresh) / (sd * sd));
     const carried = (Math.sqrt(kept) * sd) / before;
     mean *= carried;
@@ -76,16 +128,23 @@ export function crossing(
     stayed *= chance;
     largest = Math.max(largest, 1 - normalCdf(room / sd));
     before = sd;
-    if (step === null && observedShare(model, Math.max(1 - stayed, largest)) > 0.5) step = h;
+    crossed[h - 1] += weight * Math.max(1 - stayed, largest);
   }
-  return { probability: observedShare(model, Math.max(1 - stayed, largest)), step };
 }
 
-/** What a said probability has come to; straight lines between the knots. */
-function observedShare(model: CommonModel, said: number): number {
+/** What a said probability has come to; a signal's own map for the limits it was learned from, fading beyond. */
+function observedShare(model: CommonModel, signal: number, limit: number, said: number): number {
   const p = Math.min(1, Math.max(0, said));
-  const map = model.crossingMap;
-  if (map === undefined) return p;
+  const common = model.crossingMap === undefined ? p : mapped(model.crossingMap, p);
+  const own = model.crossingMaps?.[signal] ?? null;
+  if (own === null) return common;
+  const z = (limit - model.mean[signal]) / model.scale[signal];
+  const weight = Math.max(0, 1 - Math.max(0, own.low - z, z - own.high));
+  return common + weight * (mapped(own.map, p) - common);
+}
+
+/** Straight lines between the knots. */
+function mapped(map: Float64Array, p: number): number {
   let k = 1;
   while (p > CROSSING_KNOTS[k]) k++;
   const share = (p - CROSSING_KNOTS[k - 1]) / (CROSSING_KNOTS[k] - CROSSING_KNOTS[k - 1]);

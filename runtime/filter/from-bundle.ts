@@ -70,6 +70,18 @@ function commonOf(bundle: Bundle): Omit<CommonModel, 'order'> {
     boundsRate: bundle.bounds.rate,
     ...(bundle.bounds.longRate === undefined ? {} : { boundsLongRate: bundle.bounds.longRate }),
     ...(bundle.bounds.crossing === undefined ? {} : { crossingMap: Float64Array.from(bundle.bounds.crossing) }),
+    ...(bundle.bounds.crossingBySignal === undefined
+      ? {}
+      : {
+          crossingMaps: bundle.bounds.crossingBySignal.map(
+            (own) =>
+              own && {
+                low: own.low / 10,
+                high: own.high / 10,
+                map: Float64Array.from(own.percent, (share) => share / 100),
+              },
+          ),
+        }),
     ...(bundle.bounds.crossingFresh === undefined ? {} : { crossingFresh: bundle.bounds.crossingFresh }),
     radius: dequantise(bundle.bounds.radius),
     rejectSd: bundle.guard.rejectSd,

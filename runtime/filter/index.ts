@@ -19,7 +19,7 @@ export { type Bounds, createBounds, intervalOf } from './interval.ts';
 export type { Core } from './kernel.ts';
 export { settlingTicksOf } from './kernels.ts';
 export type { LinearCore } from './linear.ts';
-export type { BankModel, CommonModel, DenseModel, LinearModel, Model } from './model.ts';
+export type { BankModel, CommonModel, DenseModel, LinearModel, Model, OwnCrossingMap } from './model.ts';
 export { normalCdf, normalDensity, normalQuantile } from './normal-table.ts';
 export * from './probe.ts';
 export { type StuckGuard, standsStill } from './repeats.ts';

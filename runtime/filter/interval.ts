@@ -49,8 +49,9 @@ export interface Bounds {
   readonly issued: Float32Array;
   /** Normal quantile of the coverage: a half-width is that many standard deviations of a normal error. */
   readonly quantile: number;
-  /** (H) for work inside one call. */
+  /** (H) each for work inside one call. */
   readonly scratch: Float64Array;
+  readonly crossed: Float64Array;
 }
 
 /** Steps are scored one by one up to here … */
@@ -101,6 +102,7 @@ export function createBounds(model: CommonModel): Bounds {
     issued: new Float32Array(ny * issuedWidth * steps.reduce((sum, h) => sum + h, 0)).fill(Number.NaN),
     quantile,
     scratch: new Float64Array(H),
+    crossed: new Float64Array(H),
   };
 }
 

@@ -52,6 +52,12 @@ export interface Kernel<M extends CommonModel, C extends Core> {
   /** What each channel's own past looks like, (nc × count), for kinds that keep it; absent: they do not. */
   readonly own?: { count(model: M): number; features(core: C): Float64Array };
   /**
+   * Equally probable paths, for kinds that draw some, as the last call of `paths` for the whole horizon left them; absent:
+   * they do not. `away`: (… × count × H) how far each lies from the path forecast; `place`: which of these is a signal's,
+   * −1: none.
+   */
+  readonly draws?: { readonly count: number; away(core: C): Float64Array; place(model: M, signal: number): number };
+  /**
    * Path of every signal for steps 1 … `steps` ≤ H, before fading and clipping: `out` (ny × steps), step h at i·steps + h − 1.
    * `plan` (nu × H), NaN where an input is not planned; null: no plan. One-step predictions never see a plan.
    */

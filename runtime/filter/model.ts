@@ -10,6 +10,13 @@ import type { ResponseModel } from './response.ts';
 import type { Round } from './round.ts';
 import type { SwitchedModel } from './switched-model.ts';
 
+/** Shares as `crossingMap`, for limits from `low` to `high` and, less and less, for those up to one away; standardised. */
+export interface OwnCrossingMap {
+  readonly low: number;
+  readonly high: number;
+  readonly map: Float64Array;
+}
+
 /**
  * What every kind of model has: channels, scaling, clips, season, bounds and guard.
  *
@@ -44,6 +51,8 @@ export interface CommonModel {
   readonly boundsLongRate?: number;
   /** (CROSSING_KNOTS) how often a limit was crossed where those probabilities were said; absent: as said. */
   readonly crossingMap?: Float64Array;
+  /** (ny) the same for one signal and the limits where it often goes, in place of that; null or absent: there is none. */
+  readonly crossingMaps?: readonly (OwnCrossingMap | null)[];
   /** Share of the one-step error's spread that is new at every later step of a crossing; absent: 1. */
   readonly crossingFresh?: number;
   /** (ny × H) */

@@ -40,6 +40,10 @@ export interface Rollout {
   readonly push: Float64Array;
   /** ((n + k) × H) sums over the paths: driven, then near-discrete. */
   readonly sums: Float64Array;
+  /** (n + k) which of the forecast signals a row is, −1: none. */
+  readonly place: Int32Array;
+  /** (q × PATHS × H) how far each path of a forecast signal lies from what is forecast, as of the last whole roll-out. */
+  readonly away: Float64Array;
 }
 
 /**
@@ -86,6 +90,7 @@ export function createRollout(
       stay[p * STAYS + s] = share;
     });
   }
+  const rows = [...section.driven, ...section.discrete];
   const pick = (clips: Float64Array): Float64Array => Float64Array.from(section.driven, (c) => clips[c]);
   return {
     start,
@@ -100,7 +105,9 @@ export function createRollout(
     along: new Float64Array(n),
     other: new Float64Array(n),
     push: new Float64Array(n),
-    sums: new Float64Array((n + section.discrete.length) * horizon),
+    sums: new Float64Array(rows.length * horizon),
+    place: Int32Array.from(rows, (channel) => section.forecast.indexOf(channel)),
+    away: new Float64Array(section.forecast.length * PATHS * horizon),
   };
 }
 
@@ -123,6 +130,22 @@ export function rollOut(
   foresee(section, core, rollout, tick, horizon, steps);
   rollout.sums.fill(0);
   for (let p = 0; p < PATHS; p++) onePath(section, core, rollout, value, horizon, steps, p);
+  if (steps === horizon) center(section, rollout, horizon);
+}
+
+/** From the paths of the forecast signals to how far they lie from their mean, by the section's share in the forecast. */
+function center(section: SwitchedSection, { place, sums, away }: Rollout, horizon: number): void {
+  for (let row = 0; row < place.length; row++) {
+    const q = place[row];
+    if (q < 0) continue;
+    for (let h = 0; h < horizon; h++) {
+      const share = section.share[q * horizon + h];
+      const mean = sums[row * horizon + h];
+      for (let cell = q * PATHS * horizon + h; cell < (q + 1) * PATHS * horizon; cell += horizon) {
+        away[cell] = share * (away[cell] - mean);
+      }
+    }
+  }
 }
 
 /** Steps of the disturbance's forecast, season included. */
@@ -198,8 +221,9 @@ function onePath(
       if (z[i] < rollout.bottom[i]) z[i] = rollout.bottom[i];
       else if (z[i] > rollout.top[i]) z[i] = rollout.top[i];
       sums[i * horizon + h] += z[i] / PATHS;
+      if (steps === horizon && rollout.place[i] >= 0) rollout.away[(rollout.place[i] * PATHS + p) * horizon + h] = z[i];
     }
-    addDiscrete(section, core, rollout, mode, horizon, h);
+    addDiscrete(section, core, rollout, mode, horizon, h, steps === horizon ? p : -1);
   }
 }
 
@@ -229,10 +253,11 @@ function land(section: SwitchedSection, rollout: Rollout, pair: number, to: numb
 function addDiscrete(
   section: SwitchedSection,
   core: SwitchedCore,
-  { z, sums }: Rollout,
+  { z, sums, place, away }: Rollout,
   mode: number,
   horizon: number,
   h: number,
+  p: number,
 ): void {
   const { discrete, centre, slope } = section;
   const k = discrete.length;
@@ -242,5 +267,6 @@ function addDiscrete(
     const row = (mode * k + s) * n;
     for (let j = 0; j < n; j++) sum += slope[row + j] * z[j];
     sums[(n + s) * horizon + h] += sum / PATHS;
+    if (p >= 0 && place[n + s] >= 0) away[(place[n + s] * PATHS + p) * horizon + h] = sum;
   }
 }

@@ -10,7 +10,7 @@ import type { FilterState } from './state.ts';
 import { checkSwitched } from './switched-check.ts';
 import { type CorrectionBuffers, correct, createCorrection } from './switched-correction.ts';
 import type { SwitchedModel } from './switched-model.ts';
-import { createRollout, type Rollout, rollOut } from './switched-paths.ts';
+import { createRollout, PATHS, type Rollout, rollOut } from './switched-paths.ts';
 import { createSwitchedCore, deriveSwitched, type SwitchedCore, settleInput, stepSwitched } from './switched-step.ts';
 
 /** Buffers of the switched kind. */
@@ -138,5 +138,10 @@ export const switchedKernel: Kernel<SwitchedModel, SwitchedKernelCore> = {
     core.isDue = true;
   },
   refresh,
+  draws: {
+    count: PATHS,
+    away: (core) => core.rollout.away,
+    place: (model, signal) => model.switched.forecast.indexOf(signal),
+  },
   paths,
 };

@@ -128,6 +128,13 @@ describe('a bundle document is refused', () => {
       'schema',
       'bounds.crossing: expected at least 15 entries, got [0, 1]',
     ],
+    [
+      'with chances for other signals than it has',
+      ['bounds', 'crossingBySignal'],
+      [],
+      'schema',
+      'bounds.crossingBySignal: expected ',
+    ],
     ['with limits upside down', ['channels', 'low', 0], 90, 'schema', 'channels[0].limits: expected levels that rise'],
     ['with a decay of 1', ['linear', 'decays', 2], 1, 'schema', 'linear.decays[2]: expected less than 1, got 1'],
     [

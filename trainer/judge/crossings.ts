@@ -48,7 +48,7 @@ export function declaredLimits(limits: readonly Limits[]): AskedLimit[] {
 
 /**
  * Limits where a signal often goes: quantiles of its readings in a part of the series, low ones asked below, high ones
- * above; none for a signal that keeps one value.
+ * above; none for a signal that keeps one value, none at a value that no reading lies beyond, as the 0 A of a pump at rest.
  *
  * shapes  span of indices into the series
  * units   the signals'
@@ -58,11 +58,13 @@ export function declaredLimits(limits: readonly Limits[]): AskedLimit[] {
  */
 export function usualLimits(series: Series, span: TickSpan): AskedLimit[] {
   return series.values.slice(0, series.signalCount).flatMap((y, signal) => {
-    const found = quantiles(y.slice(span.fromTick, span.toTick), LIMIT_SHARES);
+    const part = y.slice(span.fromTick, span.toTick);
+    const found = quantiles(part, LIMIT_SHARES);
     const middle = (found[1] + found[2]) / 2;
     return found.flatMap((value): AskedLimit[] => {
       if (!(value !== middle)) return [];
-      return Number.isNaN(value) ? [] : [{ signal, value, side: value > middle ? 'above' : 'below' }];
+      const side = value > middle ? 'above' : 'below';
+      return part.some((reading) => isPast(reading, value, side)) ? [{ signal, value, side }] : [];
     });
   });
 }

@@ -2,7 +2,7 @@
  * A model to compute with, from learned factors, before there is a bundle: for calibration, and for the audit.
  */
 import { CROSSING_KNOTS } from '@stillwell/protocol';
-import type { Agreement, CommonModel, LinearModel, Round, StuckGuard } from '@stillwell/runtime/filter';
+import type { Agreement, CommonModel, LinearModel, OwnCrossingMap, Round, StuckGuard } from '@stillwell/runtime/filter';
 import { type Bank, featureCount } from '../identify/bank.ts';
 import type { Scaling } from '../identify/scaling.ts';
 import type { Season } from '../identify/season.ts';
@@ -43,6 +43,7 @@ export interface Calibration {
   readonly crossingMap?: Float64Array;
   /** Share of the one-step error's spread that is new at every later step of a crossing. */
   readonly crossingFresh?: number;
+  readonly crossingMaps?: readonly (OwnCrossingMap | null)[];
   /** Readings of the calibration part that the guard passed over, and the gain in squared error of leaving it open. */
   readonly passedOver?: number;
   readonly guardCost?: number;
@@ -116,6 +117,7 @@ export function commonPart(around: Surroundings, calibration: Calibration): Omit
     ...(around.agreement === null ? {} : { agreement: around.agreement }),
     ...(calibration.boundsLongRate === undefined ? {} : { boundsLongRate: calibration.boundsLongRate }),
     ...(calibration.crossingMap === undefined ? {} : { crossingMap: calibration.crossingMap }),
+    ...(calibration.crossingMaps === undefined ? {} : { crossingMaps: calibration.crossingMaps }),
     ...(calibration.crossingFresh === undefined ? {} : { crossingFresh: calibration.crossingFresh }),
   };
 }
@@ -126,8 +128,8 @@ export function commonPart(around: Surroundings, calibration: Calibration): Omit
  */
 export const LONG_RATE = 1.5;
 
-/** Before calibration: no reading is passed over, bounds of no width, crossing probabilities as said. */
-export function openCalibration(channelCount: number, cells: number): Calibration {
+/** Before calibration: no reading is passed over, bounds of no width, crossing probabilities as said, by `maps` signals' own tables. */
+export function openCalibration(channelCount: number, cells: number, maps = 0): Calibration {
   return {
     residualScale: new Float64Array(channelCount).fill(1),
     radius: new Float64Array(cells),
@@ -136,5 +138,14 @@ export function openCalibration(channelCount: number, cells: number): Calibratio
     boundsLongRate: LONG_RATE,
     crossingMap: Float64Array.from(CROSSING_KNOTS),
     crossingFresh: 0.5,
+    ...(maps === 0
+      ? {}
+      : {
+          crossingMaps: Array.from({ length: maps }, () => ({
+            low: -50,
+            high: 50,
+            map: Float64Array.from(CROSSING_KNOTS),
+          })),
+        }),
   };
 }
