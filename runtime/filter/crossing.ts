@@ -15,7 +15,8 @@
  * with what the paths' spread leaves of the variance, and the chances are averaged.
  *
  * Real errors are no such chain. Where the bundle says how often limits were crossed when this or that probability was said,
- * on history the model did not learn from, what is said is put right by it (`crossingMaps`, `crossingMap`).
+ * on history the model did not learn from, what is said is put right by it (`crossingMaps`, `crossingMap`); each step keeps
+ * its share of the whole chance.
  */
 import { CROSSING_KNOTS } from '@stillwell/protocol';
 import { type Bounds, radiiOf } from './interval.ts';
@@ -74,8 +75,11 @@ export function crossing(
     }
   }
   let step: number | null = null;
-  for (let h = 0; h < H && step === null; h++) if (observedShare(model, signal, limit, crossed[h]) > 0.5) step = h + 1;
-  return { probability: observedShare(model, signal, limit, crossed[H - 1]), step };
+  const last = crossed[H - 1];
+  const probability = observedShare(model, signal, limit, last);
+  // The map was learned of the whole horizon: it says nothing of when, so that each step keeps its share of the chance.
+  for (let h = 0; h < H && step === null; h++) if (crossed[h] * probability > 0.5 * last) step = h + 1;
+  return { probability, step };
 }
 
 /** Takes the variance between the drawn paths out of each step's; a one-step error's is left, where there is as much. */
