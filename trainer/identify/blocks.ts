@@ -18,8 +18,8 @@ export interface Partition {
 }
 
 const MOST_GROUPS = 8;
-/** A group shorter than this many horizons says little. */
-const GROUP_HORIZONS = 3;
+/** A group shorter than this many horizons says little; with longer ones a short record would have too few. */
+const GROUP_HORIZONS = 2;
 
 /**
  * Cuts learning and calibration parts.

@@ -4,7 +4,8 @@
  */
 
 import { lastValueErrors, type OwnChoice, type OwnTrial } from './choose-own.ts';
-import { type FoldErrors, foldWeights, gainsSurely, geometric, leastIndex, sumOver } from './fold-errors.ts';
+import { type FoldErrors, gainsSurely, leastIndex, powerMean, sumOver } from './fold-errors.ts';
+import { weightsOf } from './folds.ts';
 import {
   type Cell,
   type CrossSystem,
@@ -104,7 +105,7 @@ export function isWithinReach(layout: Layout, equations: number): boolean {
 function lastFolds(trial: OwnTrial, own: OwnChoice): { readonly trial: OwnTrial; readonly own: OwnChoice } {
   const folds = trial.folds.slice(-FEW_FOLDS);
   return {
-    trial: { ...trial, folds, weights: foldWeights(folds) },
+    trial: { ...trial, folds, weights: { ...trial.weights, shares: weightsOf(folds, trial.weights.power).shares } },
     own: { ...own, errors: own.errors.slice(-FEW_FOLDS) },
   };
 }
@@ -113,7 +114,7 @@ function tryAll(trial: OwnTrial, ready: readonly Ready[], kept: readonly number[
   let tried = tryThese(trial, ready, kept, PENALTIES);
   for (;;) {
     const totals = tried.errors.map((one) =>
-      geometric(
+      powerMean(
         sumOver(one, trial.layout.steps, () => true),
         trial.weights,
       ),
@@ -126,7 +127,7 @@ function tryAll(trial: OwnTrial, ready: readonly Ready[], kept: readonly number[
     else break;
   }
   const totals = tried.errors.map((one) =>
-    geometric(
+    powerMean(
       sumOver(one, trial.layout.steps, () => true),
       trial.weights,
     ),
@@ -172,7 +173,7 @@ function commonOf({ layout, groups, weights }: OwnTrial, { errors }: Tried): num
   return Array.from({ length: groups[groups.length - 1] + 1 }, (_, g) =>
     leastIndex(
       errors.map((one) =>
-        geometric(
+        powerMean(
           sumOver(one, layout.steps, (_i, s) => groups[s] === g),
           weights,
         ),
@@ -185,33 +186,36 @@ function commonOf({ layout, groups, weights }: OwnTrial, { errors }: Tried): num
 function scores(trial: OwnTrial, tried: Tried): number[] {
   const { layout, groups } = trial;
   const common = commonOf(trial, tried);
-  const even = Array.from({ length: layout.signalCount }, () => 1 / layout.signalCount);
+  const shares = Array.from({ length: layout.signalCount }, () => 1 / layout.signalCount);
+  const even = { shares, power: 0 };
   return trial.folds.map((_, f) => {
-    const bySignal = even.map((_share, i) =>
+    const bySignal = shares.map((_share, i) =>
       common.reduce((sum, at, g) => {
         const [one] = sumOver([tried.errors[at][f]], layout.steps, (signal, s) => signal === i && groups[s] === g);
         return sum + one;
       }, 0),
     );
-    return geometric(bySignal, even);
+    return powerMean(bySignal, even);
   });
 }
 
 function settle(trial: OwnTrial, own: OwnChoice, tried: Tried): (Cell | null)[][] {
-  const { layout, groups, folds, weights } = trial;
+  const { layout, groups, folds } = trial;
+  // A penalty adds nothing that could go wrong: it need not be as sure as lags and levels.
+  const weights = { ...trial.weights, doubt: 1 };
   const common = commonOf(trial, tried);
   const still = lastValueErrors(folds, layout);
   return own.cells.map((cells, i) => {
     const of = (errors: FoldErrors, g: number): number[] =>
       sumOver(errors, layout.steps, (signal, s) => signal === i && groups[s] === g);
     const gains = cells.map(
-      (_, g) => geometric(of(tried.errors[common[g]], g), weights) < geometric(of(own.errors, g), weights),
+      (_, g) => powerMean(of(tried.errors[common[g]], g), weights) < powerMean(of(own.errors, g), weights),
     );
     const total = (errorsOf: (g: number) => FoldErrors): number[] =>
       cells.map((_, g) => of(errorsOf(g), g)).reduce((sum, group) => sum.map((value, f) => value + group[f]));
     const both = total((g) => (gains[g] ? tried.errors[common[g]] : own.errors));
     const alone = total(() => own.errors);
-    const isBetter = geometric(both, weights) < geometric(alone, weights) * (1 - JOIN_GAIN);
+    const isBetter = powerMean(both, weights) < powerMean(alone, weights) * (1 - JOIN_GAIN);
     if (
       !isBetter ||
       !gainsSurely(

@@ -1,18 +1,16 @@
 /**
- * Penalties of the own stage, a group of steps at a time. One penalty for all signals, the one with the least geometric
- * mean error over folds, so that no fold speaks louder than another; a signal departs from it only for a clear gain of its
+ * Penalties of the own stage, a group of steps at a time. One penalty for all signals, the one with the least mean
+ * error over folds, geometric where no fold shall speak louder than another; a signal departs from it only for a clear gain of its
  * own, since a choice for each alone follows the noise of the folds. A signal that does not surely gain on its last value
  * keeps that.
  */
-import { type Fold, type FoldErrors, gainsSurely, geometric, leastIndex, sumOver } from './fold-errors.ts';
+import { type Fold, type FoldErrors, gainsSurely, leastIndex, powerMean, sumOver } from './fold-errors.ts';
+import type { Evidence } from './folds.ts';
 import type { Moments } from './moments.ts';
 import { type Cell, type Layout, ownFeatures, ridgeOwn } from './ridge.ts';
 
 /** What the own stage is chosen on. `layout.steps` are the trial steps. */
-export interface OwnTrial {
-  readonly folds: readonly Fold[];
-  /** (folds) */
-  readonly weights: readonly number[];
+export interface OwnTrial extends Evidence {
   readonly layout: Layout;
   /** Group of each trial step. */
   readonly groups: readonly number[];
@@ -42,8 +40,6 @@ const HEAVIEST = 100;
 /** Where the lightest is, lighter ones down to this: plants with next to no noise. */
 const LIGHTEST = 1e-5;
 const HALF_DECADE = Math.sqrt(10);
-/** A heavier penalty within this share of the best is preferred. */
-const TIE = 0.001;
 /** A signal departs from the common penalty only for this gain, and leaves its last value only for that one. */
 const DEPART_GAIN = 0.02;
 const DEPART_CHANCE = 0.05;
@@ -87,17 +83,17 @@ export function tryOwn(trial: OwnTrial, kept: readonly number[], among: readonly
 }
 
 /** (groups) */
-function commonOf({ layout, groups, weights }: OwnTrial, errors: readonly FoldErrors[]): number[] {
+function commonOf({ layout, groups, weights, tie }: OwnTrial, errors: readonly FoldErrors[]): number[] {
   const count = groups[groups.length - 1] + 1;
   return Array.from({ length: count }, (_, g) => {
     const means = errors.map((one) =>
-      geometric(
+      powerMean(
         sumOver(one, layout.steps, (_i, s) => groups[s] === g),
         weights,
       ),
     );
     const least = Math.min(...means);
-    return means.findLastIndex((mean) => mean <= least * (1 + TIE));
+    return means.findLastIndex((mean) => mean <= least * (1 + tie));
   });
 }
 
@@ -111,7 +107,9 @@ function commonOf({ layout, groups, weights }: OwnTrial, errors: readonly FoldEr
  * cost    trivial
  */
 export function settleOwn(trial: OwnTrial, variant: (group: number) => OwnErrors): OwnChoice {
-  const { folds, weights, layout, groups } = trial;
+  const { folds, layout, groups } = trial;
+  // A penalty adds nothing that could go wrong: it need not be as sure as lags and levels.
+  const weights = { ...trial.weights, doubt: 1 };
   const count = groups[groups.length - 1] + 1;
   const still = lastValueErrors(folds, layout);
   const errors = still.map((fold) => fold.slice());
@@ -121,9 +119,9 @@ export function settleOwn(trial: OwnTrial, variant: (group: number) => OwnErrors
       const inGroup = (one: FoldErrors): number[] =>
         sumOver(one, layout.steps, (signal, s) => signal === i && groups[s] === g);
       const own = tried.map(inGroup);
-      const best = leastIndex(own.map((one) => geometric(one, weights)));
+      const best = leastIndex(own.map((one) => powerMean(one, weights)));
       const at = gainsSurely(own[best], own[common[g]], DEPART_GAIN, weights, DEPART_CHANCE) ? best : common[g];
-      const isBetter = geometric(own[at], weights) < geometric(inGroup(still), weights);
+      const isBetter = powerMean(own[at], weights) < powerMean(inGroup(still), weights);
       return { cell: isBetter ? { penalty: penalties[at], kept } : null, errors: isBetter ? tried[at] : still };
     });
     const joined = folds.map((_, f) => picked.map((one) => one.errors[f]));

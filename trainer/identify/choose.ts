@@ -1,13 +1,13 @@
 /**
- * Chooses bank, features and penalties by rolling origin over several groups of origins, inside the learning and calibration
- * parts. Errors come from moments, so a fold costs some small solves and no pass over the readings. A single validation
- * block would be quicker still, but one block of a year is often unlike the next.
+ * Chooses bank, features and penalties over several groups of origins inside the learning and calibration parts: by rolling
+ * origin, or in a short record by each group in turn. Errors come from moments, so a fold costs some small solves and no pass
+ * over the readings. A single validation block would be quicker still, but one block of a year is often unlike the next.
  */
 import { type Bank, featureCount } from './bank.ts';
 import { chooseCross } from './choose-cross.ts';
 import { type OwnChoice, type OwnErrors, type OwnTrial, settleOwn, tryOwn } from './choose-own.ts';
-import { type Fold, foldWeights, gainsSurely, geometric, sumOver } from './fold-errors.ts';
-import { aboutMeans, addMoments } from './moment-sets.ts';
+import { gainsSurely, powerMean, sumOver } from './fold-errors.ts';
+import { makeEvidence } from './folds.ts';
 import type { Moments } from './moments.ts';
 import type { Cell, Layout, TwoStagePlan } from './ridge.ts';
 import { stepGroups, type trialSteps } from './step-groups.ts';
@@ -31,6 +31,8 @@ export interface Choice {
 const TIE = 0.002;
 /** Lags are taken in for this sure gain, in the groups of steps where it is there. */
 const LAG_GAIN = 0.002;
+/** Folds in turn find lags in every other record that has none, unless they must be surer. */
+const LAG_CHANCES = { onward: 0.1, inTurn: 0.005 } as const;
 /**
  * A signal takes the level for this gain, surer than others: where the level of a plant shifts later, it will draw forecasts
  * to the old one. All signals and folds together are better evidence of a plant that returns to its mean than one signal.
@@ -38,8 +40,6 @@ const LAG_GAIN = 0.002;
 const LEVEL_GAIN = 0.005;
 const LEVEL_CHANCE = 0.005;
 const JOINT_CHANCE = 0.05;
-/** Folds learn from at least this many groups where there are enough. */
-const FIRST_FOLD = 3;
 
 /**
  * Chooses.
@@ -56,14 +56,12 @@ export function choose(
   layout: Layout,
   trials: ReturnType<typeof trialSteps>,
 ): Choice {
-  const folds = makeFolds(groups);
   const trial: OwnTrial = {
-    folds,
-    weights: foldWeights(folds),
+    ...makeEvidence(groups),
     layout: { ...layout, steps: trials.steps.length },
     groups: trials.groups,
   };
-  const { size, plain, plainLevel } = chooseSize(trial, bank);
+  const { size, plain, plainLevel, lasting } = chooseSize(trial, bank);
   const lagged = { ...size, lags: bank.lags.length };
   const withLags = bank.lags.length > 0 ? variant(trial, bank, lagged, plain) : plain;
   const isLagged = laggedGroups(trial, plain, withLags);
@@ -73,6 +71,7 @@ export function choose(
     trial,
     settleOwn(trial, (g) => (isLagged[g] ? withLags : plain)),
     settleOwn(trial, (g) => (isLagged[g] ? lagsLevel : plainLevel)),
+    lasting,
   );
   // What other channels did long ago may matter where a signal's own distant past does not.
   const slow = subBank(bank, { ...size, means: bank.decays.length, level: 1 }).kept;
@@ -85,6 +84,7 @@ interface Sized {
   readonly size: BankSize;
   readonly plain: OwnErrors;
   readonly plainLevel: OwnErrors;
+  readonly lasting: readonly boolean[];
 }
 
 /** The bank's size without lags, by the own stage alone. */
@@ -92,16 +92,19 @@ function chooseSize(trial: OwnTrial, bank: Bank): Sized {
   const candidates = bankSizes(bank).map((size) => {
     const plain = tryOwn(trial, subBank(bank, size).kept, null);
     const plainLevel = variant(trial, bank, { ...size, level: 1 }, plain);
+    const lasting = lastingLevels(trial, plain, plainLevel);
     const { errors } = joinLevels(
       trial,
       settleOwn(trial, () => plain),
       settleOwn(trial, () => plainLevel),
+      lasting,
     );
     return {
       size,
       plain,
       plainLevel,
-      error: geometric(
+      lasting,
+      error: powerMean(
         sumOver(errors, trial.layout.steps, () => true),
         trial.weights,
       ),
@@ -121,19 +124,37 @@ function variant(trial: OwnTrial, bank: Bank, size: BankSize, plain: OwnErrors):
 /** (groups) whether lags gain surely there. */
 function laggedGroups(trial: OwnTrial, plain: OwnErrors, withLags: OwnErrors): boolean[] {
   const { layout, groups } = trial;
+  const chance = trial.onward === undefined ? LAG_CHANCES.onward : LAG_CHANCES.inTurn;
   const without = settleOwn(trial, () => plain).errors;
   const within = settleOwn(trial, () => withLags).errors;
   return Array.from({ length: groups[groups.length - 1] + 1 }, (_, g) => {
     const inGroup = (_i: number, s: number): boolean => groups[s] === g;
     const gained = sumOver(within, layout.steps, inGroup);
-    return gainsSurely(gained, sumOver(without, layout.steps, inGroup), LAG_GAIN, trial.weights);
+    return gainsSurely(gained, sumOver(without, layout.steps, inGroup), LAG_GAIN, trial.weights, chance);
+  });
+}
+
+/** (ny) whether the level gains by rolling origin too. */
+function lastingLevels(trial: OwnTrial, plain: OwnErrors, plainLevel: OwnErrors): boolean[] {
+  const { onward, layout } = trial;
+  const signals = Array.from({ length: layout.signalCount }, (_, i) => i);
+  if (onward === undefined) return signals.map(() => true);
+  const ahead: OwnTrial = { ...trial, ...onward };
+  const [flat, steep] = [plain, plainLevel].map(({ kept, penalties }) => {
+    const tried = tryOwn(ahead, kept, penalties);
+    return settleOwn(ahead, () => tried).errors;
+  });
+  return signals.map((i) => {
+    const of = (errors: OwnChoice['errors']): number[] => sumOver(errors, layout.steps, (signal) => signal === i);
+    return gainsSurely(of(steep), of(flat), LEVEL_GAIN, onward.weights);
   });
 }
 
 /**
  * Each signal with the level where that gains surely: for it alone, or for all signals together and not at its own cost.
  */
-function joinLevels({ weights, layout }: OwnTrial, flat: OwnChoice, steep: OwnChoice): OwnChoice {
+function joinLevels(trial: OwnTrial, flat: OwnChoice, steep: OwnChoice, onward: readonly boolean[]): OwnChoice {
+  const { weights, layout } = trial;
   const errors = flat.errors.map((fold) => fold.slice());
   const ofSignal = (choice: OwnChoice, i: number): number[] =>
     sumOver(choice.errors, layout.steps, (signal) => signal === i);
@@ -142,13 +163,14 @@ function joinLevels({ weights, layout }: OwnTrial, flat: OwnChoice, steep: OwnCh
     pairs.flatMap((pair) => pair.with),
     pairs.flatMap((pair) => pair.without),
     LEVEL_GAIN,
-    pairs.flatMap(() => weights.map((weight) => weight / pairs.length)),
+    { ...weights, shares: pairs.flatMap(() => weights.shares.map((share) => share / pairs.length)) },
     JOINT_CHANCE,
   );
   const cells = flat.cells.map((without, i) => {
     const pair = pairs[i];
-    const isWorth = isJoint && geometric(pair.with, weights) < geometric(pair.without, weights) * (1 - LEVEL_GAIN);
-    if (!isWorth && !gainsSurely(pair.with, pair.without, LEVEL_GAIN, weights, LEVEL_CHANCE)) return without;
+    const isWorth = isJoint && powerMean(pair.with, weights) < powerMean(pair.without, weights) * (1 - LEVEL_GAIN);
+    if (!onward[i] || (!isWorth && !gainsSurely(pair.with, pair.without, LEVEL_GAIN, weights, LEVEL_CHANCE)))
+      return without;
     steep.errors.forEach((fold, f) => {
       errors[f].set(fold.subarray(i * layout.steps, (i + 1) * layout.steps), i * layout.steps);
     });
@@ -199,15 +221,4 @@ function smallestBank(
     .filter(({ kept }) => [...used].every((f) => kept.includes(f)))
     .sort((a, b) => featureCount(a.bank) - featureCount(b.bank));
   return fitting[0];
-}
-
-function makeFolds(groups: readonly Moments[]): Fold[] {
-  const first = Math.max(1, Math.min(FIRST_FOLD, groups.length - 2));
-  const folds: Fold[] = [];
-  let learn = addMoments(groups.slice(0, first));
-  for (let g = first; g < groups.length; g++) {
-    folds.push({ learn: aboutMeans(learn), judge: groups[g] });
-    learn = addMoments([learn, groups[g]]);
-  }
-  return folds;
 }

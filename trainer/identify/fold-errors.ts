@@ -19,44 +19,42 @@ const STUDENT = {
   0.005: [63.657, 9.925, 5.841, 4.604, 4.032, 3.707, 3.499],
 } as const;
 
-/**
- * Weight of each fold: the origins it learned from, since the final fit learns from more than any of them.
- *
- * shapes  result (folds)
- * units   shares of one
- * throws  nothing
- * source  own choice
- * cost    trivial
- */
-export function foldWeights(folds: readonly Fold[]): number[] {
-  const total = folds.reduce((sum, { learn }) => sum + learn.origins, 0);
-  return folds.map(({ learn }) => learn.origins / total);
+/** How errors of folds are averaged. */
+export interface FoldWeights {
+  /** (folds) of sum one. */
+  readonly shares: readonly number[];
+  /** Of the power mean: 0 is the geometric one, where no fold speaks louder for having more to err by; 1 the plain one. */
+  readonly power: number;
+  /** How much less sure a mean over these folds is than one over as many that shared nothing of what they learned from. */
+  readonly doubt: number;
 }
 
 /**
- * Whether one choice's errors lie below another's: by more than a share on geometric average, and by more than folds that
+ * Whether one choice's errors lie below another's: by more than a share on average, and by more than folds that
  * differ by chance would show in `chance` of cases. A single fold has only the share to go by.
  *
- * shapes  one error a fold, or a fold and signal, in both; weights as many, of sum one
+ * shapes  one error a fold, or a fold and signal, in both; shares as many
  * units   any, the same in both
  * throws  nothing
- * source  Student's test of paired differences, on logarithms, weighted
+ * source  Student's test of paired differences, on logarithms or powers, weighted
  * cost    trivial
  */
 export function gainsSurely(
   errors: readonly number[],
   others: readonly number[],
   share: number,
-  weights: readonly number[],
+  weights: FoldWeights,
   chance: keyof typeof STUDENT = 0.1,
 ): boolean {
-  const gains = errors.map((error, f) => logOf(others[f]) - logOf(error));
-  const freedom = gains.length - 1;
-  const mean = gains.reduce((sum, gain, f) => sum + weights[f] * gain, 0);
-  if (!(mean > -Math.log(1 - share))) return false;
+  const { shares } = weights;
+  if (!(powerMean(errors, weights) < powerMean(others, weights) * (1 - share))) return false;
+  const freedom = errors.length - 1;
   if (freedom === 0) return true;
-  const variance = gains.reduce((sum, gain, f) => sum + weights[f] * (gain - mean) * (gain - mean), 0);
-  return mean >= STUDENT[chance][Math.min(freedom, 7) - 1] * Math.sqrt(variance / freedom);
+  const [low, high] = [errors, others].map((some) => some.map((error) => bent(error, weights.power)));
+  const gains = low.map((error, f) => high[f] - error);
+  const mean = gains.reduce((sum, gain, f) => sum + shares[f] * gain, 0);
+  const variance = gains.reduce((sum, gain, f) => sum + shares[f] * (gain - mean) * (gain - mean), 0);
+  return mean >= STUDENT[chance][Math.min(freedom, 7) - 1] * weights.doubt * Math.sqrt(variance / freedom);
 }
 
 /**
@@ -80,11 +78,19 @@ export function sumOver(
   });
 }
 
-/** Weighted geometric mean, weights of sum one; a zero counts as the smallest number there is. */
-export function geometric(values: readonly number[], weights: readonly number[]): number {
+/**
+ * Weighted power mean; in the geometric one a zero counts as the smallest number there is.
+ *
+ * shapes  values as many as shares
+ * units   the values'
+ * throws  nothing
+ * source  definition
+ * cost    trivial
+ */
+export function powerMean(values: readonly number[], { shares, power }: Omit<FoldWeights, 'doubt'>): number {
   let sum = 0;
-  for (let f = 0; f < values.length; f++) sum += weights[f] * logOf(values[f]);
-  return Math.exp(sum);
+  for (let f = 0; f < values.length; f++) sum += shares[f] * bent(values[f], power);
+  return power === 0 ? Math.exp(sum) : sum ** (1 / power);
 }
 
 /** Index of the least value, the first of equals. */
@@ -94,6 +100,7 @@ export function leastIndex(values: readonly number[]): number {
   return best;
 }
 
-function logOf(value: number): number {
-  return Math.log(Math.max(value, Number.MIN_VALUE));
+/** What is averaged: the logarithm or a power. */
+function bent(value: number, power: number): number {
+  return power === 0 ? Math.log(Math.max(value, Number.MIN_VALUE)) : Math.max(value, 0) ** power;
 }

@@ -8,7 +8,8 @@ import { type Bank, designBank, featureCount, settlingTicks } from './bank.ts';
 import { partition } from './blocks.ts';
 import { type OwnTrial, settleOwn, tryOwn } from './choose-own.ts';
 import type { Filled } from './fill.ts';
-import { type Fold, foldWeights, gainsSurely, geometric, sumOver } from './fold-errors.ts';
+import { type FoldWeights, gainsSurely, powerMean, sumOver } from './fold-errors.ts';
+import { onwardEvidence } from './folds.ts';
 import type { LearnInput } from './learn.ts';
 import { aboutMeans, addMoments, pickMoments } from './moment-sets.ts';
 import { gatherMoments, type Moments } from './moments.ts';
@@ -22,6 +23,8 @@ const WEIGHTS = [1, 0.5] as const;
 /** A round must gain this share of the squared error surely: it costs memory, and doubles what is noise in the last one. */
 const ROUND_GAIN = 0.02;
 const ROUND_CHANCE = 0.05;
+/** A longer round must gain this over a shorter one: it leaves less of the record to learn from. */
+const LONGER_GAIN = 0.1;
 /** Where there is a pattern to be seen, as large a gain is believed without being sure. */
 const LARGE_GAIN = 0.15;
 /** Share of a signal's changes that a pattern must explain before a round may count its trend as a gain. */
@@ -45,30 +48,43 @@ const MOST_SIGNALS = 32;
 export function chooseRound(input: LearnInput, tickMs: number): Round | null {
   const rounds = roundsWorthTrying(input, tickMs);
   if (rounds.length === 0 || input.signalCount > MOST_SIGNALS) return null;
-  const signals = Array.from({ length: input.signalCount }, (_, i) => i);
-  let best: { round: Round; gain: number } | null = null;
-  for (const ticks of rounds) {
-    let gain = 0;
-    const weight = Float64Array.from(signals, (i) => {
+  const gaining = rounds
+    .toSorted((a, b) => a - b)
+    .map((ticks) => weightsThatPay(input, ticks))
+    .filter(({ weight }) => weight.some((w) => w > 0));
+  if (gaining.length < 2) return gaining[0] ?? null;
+  // From the same origins: what is left after the longest is little to learn from, and flatters whatever gains on it.
+  const skip = Math.max(...rounds);
+  const errors = gaining.map(({ ticks, weight }) => {
+    const bySignal = Array.from(weight, (w, i) => {
       const hasPattern = patternShare(input, i, ticks) >= LEAST_PATTERN;
-      // With a round of no weight, so that the origins are those that a round has, whose gaps show twice.
-      const plain = ownErrors(input, i, { ticks, weight: Float64Array.of(0) }, ticks, hasPattern);
-      const tried = WEIGHTS.map((w) => ({
-        w,
-        ...ownErrors(input, i, { ticks, weight: Float64Array.of(w) }, ticks, hasPattern),
-      }));
-      const mean = (errors: readonly number[]): number => geometric(errors, plain.weights);
-      const [first, second] = tried;
-      const least = mean(second.errors) < mean(first.errors) ? second : first;
-      const isSure = gainsSurely(least.errors, plain.errors, ROUND_GAIN, plain.weights, ROUND_CHANCE);
-      const isLarge = hasPattern && mean(least.errors) < mean(plain.errors) * (1 - LARGE_GAIN);
-      if (!isSure && !isLarge) return 0;
-      gain += Math.log(mean(plain.errors) / mean(least.errors));
-      return least.w;
+      const left = ownErrors(input, i, { ticks, weight: Float64Array.of(w) }, skip, hasPattern);
+      return Math.log(Math.max(powerMean(left.errors, left.weights), Number.MIN_VALUE));
     });
-    if (gain > (best?.gain ?? 0)) best = { round: { ticks, weight }, gain };
-  }
-  return best?.round ?? null;
+    return bySignal.reduce((sum, error) => sum + error);
+  });
+  const most = Math.min(...errors) - input.signalCount * Math.log(1 - LONGER_GAIN);
+  return gaining[errors.findIndex((error) => error <= most)];
+}
+
+/** A round with the weight that pays for each signal; 0: none. */
+function weightsThatPay(input: LearnInput, ticks: number): Round {
+  const weight = Float64Array.from({ length: input.signalCount }, (_, i) => {
+    const hasPattern = patternShare(input, i, ticks) >= LEAST_PATTERN;
+    // With a round of no weight, so that the origins are those that a round has, whose gaps show twice.
+    const plain = ownErrors(input, i, { ticks, weight: Float64Array.of(0) }, ticks, hasPattern);
+    const tried = WEIGHTS.map((w) => ({
+      w,
+      ...ownErrors(input, i, { ticks, weight: Float64Array.of(w) }, ticks, hasPattern),
+    }));
+    const mean = (errors: readonly number[]): number => powerMean(errors, plain.weights);
+    const [first, second] = tried;
+    const least = mean(second.errors) < mean(first.errors) ? second : first;
+    const isSure = gainsSurely(least.errors, plain.errors, ROUND_GAIN, plain.weights, ROUND_CHANCE);
+    const isLarge = hasPattern && mean(least.errors) < mean(plain.errors) * (1 - LARGE_GAIN);
+    return isSure || isLarge ? least.w : 0;
+  });
+  return { ticks, weight };
 }
 
 function roundsWorthTrying(input: LearnInput, tickMs: number): number[] {
@@ -125,7 +141,7 @@ function ownErrors(
   round: Round,
   skip: number,
   hasPattern: boolean,
-): { readonly errors: number[]; readonly weights: number[] } {
+): { readonly errors: number[]; readonly weights: FoldWeights } {
   const { filled, horizon, learnTicks, calibrateTicks, periodTicks } = input;
   const wish = { periodTicks, otherPeriods: [], horizon, learnTicks, channelCount: 1 };
   const bank: Bank = { ...designBank(wish), lags: [], hasLevel: false };
@@ -142,19 +158,12 @@ function ownErrors(
     const parts = moments.filter((_, k) => own.includes(blocks[k]));
     return parts.length > 0 ? [pickMoments(addMoments(parts), layout, kept, trials.steps)] : [];
   });
-  const folds: Fold[] = [];
-  for (let g = Math.max(1, Math.min(3, groups.length - 2)); g < groups.length; g++) {
-    // Without a pattern about its means too: a record that only rises would otherwise take its last round's rise for one.
-    folds.push({
-      learn: aboutMeans(addMoments(groups.slice(0, g))),
-      judge: hasPattern ? groups[g] : withoutTrend(groups[g]),
-    });
-  }
-  const weights = foldWeights(folds);
-  const trial: OwnTrial = { folds, weights, layout: { ...layout, steps: trials.steps.length }, groups: trials.groups };
+  // Without a pattern about its means too: a record that only rises would otherwise take its last round's rise for one.
+  const evidence = onwardEvidence(groups, hasPattern ? groups : groups.map(withoutTrend));
+  const trial: OwnTrial = { ...evidence, layout: { ...layout, steps: trials.steps.length }, groups: trials.groups };
   const tried = tryOwn(trial, kept, PENALTIES);
   const { errors } = settleOwn(trial, () => tried);
-  return { errors: sumOver(errors, trials.steps.length, () => true), weights };
+  return { errors: sumOver(errors, trials.steps.length, () => true), weights: evidence.weights };
 }
 
 /** Moments about the means of a judging group itself. */

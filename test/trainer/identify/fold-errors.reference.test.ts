@@ -1,8 +1,8 @@
 /** Sure gains against a published worked example of Student's paired test. */
 import { describe, expect, it } from 'vitest';
-import { gainsSurely, geometric } from '../../../trainer/identify/fold-errors.ts';
+import { type FoldWeights, gainsSurely, powerMean } from '../../../trainer/identify/fold-errors.ts';
 
-const even = (n: number): number[] => new Array(n).fill(1 / n);
+const even = (n: number, power = 0): FoldWeights => ({ shares: new Array(n).fill(1 / n), power, doubt: 1 });
 
 describe('gainsSurely', () => {
   // Student, Biometrika 6 (1908), section IX: hours of sleep gained by ten patients, one drug over another. Mean difference
@@ -22,21 +22,32 @@ describe('gainsSurely', () => {
       const s = 1 / (t * Math.sqrt(0.8 / 4));
       return [1 - s, 1 + s, 1, 1 + s, 1 - s].map((gain) => Math.exp(-gain));
     };
-    const others = even(5).map(() => 1);
+    const others = [1, 1, 1, 1, 1];
     expect(gainsSurely(at(2.14), others, 0, even(5), 0.05)).toBe(true);
     expect(gainsSurely(at(2.12), others, 0, even(5), 0.05)).toBe(false);
     expect(gainsSurely(at(2.12), others, 0, even(5), 0.1)).toBe(true);
+    expect(gainsSurely(at(2.14), others, 0, { ...even(5), doubt: 1.1 }, 0.05)).toBe(false);
+  });
+
+  it('listens to the folds where much moves, by the power mean between', () => {
+    const still = [0.01, 1, 1.2, 0.9];
+    // Half as much again where next to nothing moves, a fifth less elsewhere.
+    const errors = [0.015, 0.8, 0.97, 0.71];
+    expect(gainsSurely(errors, still, 0.01, even(4))).toBe(false);
+    expect(gainsSurely(errors, still, 0.01, even(4, 0.5))).toBe(true);
   });
 
   it('asks for the share, and a lone fold has only that to go by', () => {
-    expect(gainsSurely([0.97], [1], 0.02, [1])).toBe(true);
-    expect(gainsSurely([0.99], [1], 0.02, [1])).toBe(false);
+    expect(gainsSurely([0.97], [1], 0.02, even(1))).toBe(true);
+    expect(gainsSurely([0.99], [1], 0.02, even(1))).toBe(false);
   });
 });
 
-describe('geometric', () => {
+describe('powerMean', () => {
   it('weighs', () => {
-    expect(geometric([4, 9], [0.5, 0.5])).toBeCloseTo(6, 12);
-    expect(geometric([2, 8], [0.25, 0.75])).toBeCloseTo(2 ** 2.5, 12);
+    expect(powerMean([4, 9], even(2))).toBeCloseTo(6, 12);
+    expect(powerMean([2, 8], { shares: [0.25, 0.75], power: 0 })).toBeCloseTo(2 ** 2.5, 12);
+    expect(powerMean([4, 16], even(2, 0.5))).toBeCloseTo(9, 12);
+    expect(powerMean([4, 16], even(2, 1))).toBeCloseTo(10, 12);
   });
 });
