@@ -15,13 +15,10 @@ function hourly(missingShare: number) {
 }
 
 describe('the usual interval', () => {
-  test.each([0, 0.2, 0.45, 0.6, 0.7, 0.8])(
-    'of an hourly log with a share of %d missing is an hour',
-    (missingShare) => {
-      expect(cadenceOf(hourly(missingShare), null).intervalMs).toBe(HOUR);
-      expect(suggestTick([cadenceOf(hourly(missingShare), null).intervalMs])).toBe(HOUR);
-    },
-  );
+  test.each([0, 0.2, 0.45, 0.6, 0.7, 0.8])('of an hourly log with a share of %d missing is an hour', (missingShare) => {
+    expect(cadenceOf(hourly(missingShare), null).intervalMs).toBe(HOUR);
+    expect(suggestTick([cadenceOf(hourly(missingShare), null).intervalMs])).toBe(HOUR);
+  });
 
   test('and so though its clock wavers', () => {
     const random = seededNumbers(6);

@@ -1,5 +1,4 @@
 /** The report: what it says at a glance, that the worst day comes first, and that nothing in it is undefined. */
-import { parseHTML } from 'linkedom';
 import { beforeAll, describe, expect, test } from 'vitest';
 import { FIT_DEFAULTS, type FitResult, fit as fitHistory } from '../../../trainer/pipeline.ts';
 import { leansOn, trustedSteps } from '../../../trainer/report/glance.ts';
@@ -11,7 +10,7 @@ const site = hourlySite(names, 12, []);
 const DAY = 24;
 
 let result: FitResult;
-let page: Document;
+let page: string;
 
 beforeAll(async () => {
   const values = wanderingDays(2, 1500, 5);
@@ -22,28 +21,33 @@ beforeAll(async () => {
   const lattices = names.map(() => ({ step: 0.01, offset: 0 }));
   result = await fitHistory({ series, site, survey: {}, lattices }, { ...FIT_DEFAULTS, kind: 'linear' });
   const survey = { findings: [] } as unknown as Parameters<typeof fitReport>[0]['survey'];
-  page = parseHTML(fitReport({ site, survey, result })).document;
+  page = fitReport({ site, survey, result });
 });
 
-const headings = (): string[] => [...page.querySelectorAll('h2')].map((heading) => heading.textContent ?? '');
+/** Text between a tag's first appearance after some words and its end, tags inside taken out. */
+function textOf(tag: string, after = '<body>'): string {
+  const from = page.indexOf(`<${tag}`, page.indexOf(after));
+  return page.slice(from, page.indexOf(`</${tag.split(' ')[0]}>`, from)).replace(/<[^>]*>/g, ' ');
+}
 
 describe('the page', () => {
   test('says first whether it may be trusted, then what is wrong, then how far ahead', () => {
-    expect(headings().slice(0, 3)).toEqual([
+    expect([...page.matchAll(/<h2>([^<]*)<\/h2>/g)].slice(0, 3).map(([, words]) => words)).toEqual([
       'At a glance',
       'What was found wrong in the history',
       'How far ahead it can be trusted',
     ]);
-    expect(page.querySelector('.verdict')?.textContent).toBe(result.verdicts.sentence);
-    expect(page.querySelector('.caution')?.textContent).toMatch(/Not a safety function/);
+    expect(textOf('p class="verdict').trim()).toContain(result.verdicts.sentence);
+    expect(textOf('p class="caution')).toMatch(/Not a safety function/);
   });
 
   test('names the day that went its own way as the worst, and the signal that stood out', () => {
     const from = 1320 - ((result.learn.fromTick + 1320) % DAY);
     const worst = new Date((result.learn.fromTick + from) * 3_600_000).toISOString().slice(0, 10);
-    const table = [...page.querySelectorAll('h2')].find((h) => h.textContent === 'The worst of it first')
-      ?.nextElementSibling?.nextElementSibling;
-    const first = table?.querySelector('tbody tr')?.textContent ?? '';
+    const first = textOf(
+      'tr',
+      page.slice(page.indexOf('<tbody>', page.indexOf('The worst of it first'))).slice(0, 200),
+    );
     // Forecasts begun on the evening before reach into it, too.
     const before = new Date(Date.parse(worst) - 86_400_000).toISOString().slice(0, 10);
     expect([worst, before].some((day) => first.includes(day))).toBe(true);
@@ -51,10 +55,9 @@ describe('the page', () => {
   });
 
   test('holds no number that is none, and loads nothing from elsewhere', () => {
-    const text = page.body.textContent ?? '';
-    expect(text).not.toMatch(/NaN|undefined|null|Infinity/);
-    expect([...page.querySelectorAll('script, link, img, iframe')]).toEqual([]);
-    expect(page.querySelectorAll('svg').length).toBeGreaterThan(6);
+    expect(page.replace(/<[^>]*>/g, ' ')).not.toMatch(/NaN|undefined|null|Infinity/);
+    expect(page).not.toMatch(/<(script|link|img|iframe)/);
+    expect(page.split('<svg').length).toBeGreaterThan(7);
   });
 });
 
