@@ -25,7 +25,11 @@ process.on('message', async ({ number, program, args, folder }) => {
     said.stderr += `${error.stack}\n`;
     process.exitCode = 1;
   }
-  for (const name of ['stdout', 'stderr']) process[name].write = writers[name];
+  for (const name of ['stdout', 'stderr']) {
+    process[name].write = writers[name];
+    // What a program hangs on its output ends with it.
+    process[name].removeAllListeners('error');
+  }
   process.send({ code: process.exitCode ?? 0, out: said.stdout, err: said.stderr });
   process.exitCode = undefined;
 });
