@@ -179,6 +179,7 @@ export const guardSchema = z.strictObject({
   rejectSd: positive,
   maxTicks: count,
   confirmsJumps: z.literal(true).optional(),
+  bridgesGaps: z.literal(true).optional(),
   stuck: z.array(z.int().min(0).max(65_535)).max(MAX_CHANNELS).optional(),
   rests: z.array(z.array(z.number()).max(64)).max(MAX_CHANNELS).optional(),
   stuckActs: z.literal(true).optional(),

@@ -203,6 +203,8 @@ export interface Bundle {
     readonly maxTicks: number;
     /** A second reading as far off as the first is taken for a jump and folded in; absent: it is passed over too. */
     readonly confirmsJumps?: true | undefined;
+    /** When readings come back, what stood in for the missed ones is moved towards them; absent: it stays. */
+    readonly bridgesGaps?: true | undefined;
     /** (ny) a signal stands still from the reading on that ends a run of so many alike; 0: never. Absent: never. */
     readonly stuck?: readonly number[] | undefined;
     /** (ny) values, in `unit`, that a signal may repeat for ever; there with `stuck`. */

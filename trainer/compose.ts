@@ -158,6 +158,7 @@ function guardOf({ rejectSd, rejectMaxTicks, stuck }: Calibration): Bundle['guar
     rejectSd,
     maxTicks: rejectMaxTicks,
     confirmsJumps: true,
+    bridgesGaps: true,
     ...(stuck === undefined
       ? {}
       : {

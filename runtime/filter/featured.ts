@@ -166,6 +166,7 @@ export const featuredKernel: Kernel<FeaturedModel, FeaturedCore> = {
   },
   beforeTick,
   settle,
+  bridge: (model, core, channel, missed, step) => linearKernel.bridge?.(asLinear(model), core, channel, missed, step),
   advance: (model, core, state, channel) => linearKernel.advance(asLinear(model), core, state, channel),
   refresh,
   own: { count: (model) => model.featureCount, features: (core) => core.features },

@@ -87,6 +87,7 @@ function commonOf(bundle: Bundle): Omit<CommonModel, 'order'> {
     rejectSd: bundle.guard.rejectSd,
     rejectMaxTicks: bundle.guard.maxTicks,
     ...(bundle.guard.confirmsJumps === true ? { confirmsJumps: true } : {}),
+    ...(bundle.guard.bridgesGaps === true ? { bridgesGaps: true } : {}),
     ...stuckOf(bundle.guard),
     ...(bundle.agreement === undefined ? {} : { agreement: agreementOf(bundle.agreement) }),
     warmupTicks: bundle.warmupTicks,

@@ -47,6 +47,11 @@ export interface Kernel<M extends CommonModel, C extends Core> {
   settle(model: M, core: C, state: FilterState, channel: number): void;
   /** Moves a channel's memories on with `state.rest[channel]`, instead of `settle` at all later ticks. */
   advance(model: M, core: C, state: FilterState, channel: number): void;
+  /**
+   * Moves a channel's memories as if its values of the last `missed` ticks had each lain higher by `step`, 2 × `step`, … up to
+   * missed × `step` at the tick before this one; before `advance`. Absent: the kind's memories cannot be moved so.
+   */
+  bridge?(model: M, core: C, channel: number, missed: number, step: number): void;
   /** Once a tick after all channels, and after a restore (`state.tick` ≥ 0): everything that follows from the memories. */
   refresh(model: M, core: C, state: FilterState): void;
   /** What each channel's own past looks like, (nc × count), for kinds that keep it; absent: they do not. */

@@ -24,6 +24,8 @@ export interface LinearCore extends Core {
   readonly ring: Float64Array;
   /** Slot of the ring that holds the oldest value. */
   ringAt: number;
+  /** (memoryCount) for work inside one call. */
+  readonly moved: Float64Array;
   /** (nc·F) */
   readonly features: Float64Array;
   /** (ny·r) */
@@ -49,6 +51,7 @@ export function createLinearCore(model: BankModel): LinearCore {
     memory: new Float64Array(nc * bank.memoryCount),
     ring: new Float64Array(nc * bank.ringLength),
     ringAt: 0,
+    moved: new Float64Array(bank.memoryCount),
     features: new Float64Array(nc * model.featureCount),
     x: new Float64Array(model.order),
     coefficients: new Float64Array(ny * r),
@@ -56,6 +59,33 @@ export function createLinearCore(model: BankModel): LinearCore {
     ownPast: new Float64Array(own === undefined ? 0 : width),
     ownPart: new Float64Array(own === undefined ? 0 : r),
   };
+}
+
+/**
+ * Moves memories and ring as `Kernel.bridge` states: the bank run over the steps alone, since it is linear in its values.
+ *
+ * cost    O(missed · memoryCount); once a gap; allocates nothing
+ */
+function bridgeMemories(model: BankModel, core: LinearCore, channel: number, missed: number, step: number): void {
+  const { bank, memory, ring, ringAt, moved } = core;
+  moved.fill(0);
+  for (let k = 1; k <= missed; k++) {
+    const by = k * step;
+    for (let m = 0; m < bank.decayCount; m++) moved[m] = model.decays[m] * moved[m] + bank.decayGain[m] * by;
+    for (let r = 0, m = bank.decayCount; r < bank.resonatorCount; r++, m += 2) {
+      const re = moved[m];
+      const im = moved[m + 1];
+      moved[m] = model.resonatorRe[r] * re - model.resonatorIm[r] * im + bank.resonatorGain[r] * by;
+      moved[m + 1] = model.resonatorRe[r] * im + model.resonatorIm[r] * re;
+    }
+  }
+  const at = channel * bank.memoryCount;
+  for (let m = 0; m < bank.memoryCount; m++) memory[at + m] += moved[m];
+  // The newest slot lies before the oldest: it holds the value of the tick before, the last one missed.
+  for (let k = missed, slot = ringAt; k > missed - bank.ringLength && k >= 1; k--) {
+    slot = slot === 0 ? bank.ringLength - 1 : slot - 1;
+    ring[channel * bank.ringLength + slot] += k * step;
+  }
 }
 
 /** Puts the value of the tick before into every ring, over the oldest. */
@@ -214,6 +244,7 @@ export const linearKernel: Kernel<LinearModel, LinearCore> = {
   beforeTick: pushRing,
   settle: (_model, core, state, channel) => settleChannel(core.bank, core.memory, core.ring, state.rest, channel),
   advance: (model, core, state, channel) => advanceChannel(model, core.bank, core.memory, state.rest, channel),
+  bridge: bridgeMemories,
   refresh: refreshLinear,
   own: { count: (model) => model.featureCount, features: (core) => core.features },
   paths: linearPaths,

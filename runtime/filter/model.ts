@@ -61,6 +61,8 @@ export interface CommonModel {
   readonly rejectMaxTicks: number;
   /** Whether a second reading as far off as the one passed over before it is taken for a jump; absent: it is not. */
   readonly confirmsJumps?: boolean;
+  /** Whether memories are mended when readings come back after a gap (update.ts); absent: they are not. */
+  readonly bridgesGaps?: boolean;
   readonly warmupTicks: number;
   /** What the channels say of each other; absent: too little. */
   readonly agreement?: Agreement;

@@ -67,6 +67,26 @@ export function advanceRound(round: Round, state: FilterState, signal: number, t
   state.rest[signal] = restOf(round, state, signal, tick);
 }
 
+/**
+ * Moves what is remembered of the last `missed` ticks before `tick` by even steps, as the kernel's memories are.
+ *
+ * cost    O(missed); allocates nothing
+ */
+export function bridgeRound(
+  round: Round,
+  state: FilterState,
+  signal: number,
+  tick: number,
+  missed: number,
+  step: number,
+): void {
+  const length = round.ticks + 1;
+  for (let k = 1; k <= Math.min(missed, round.ticks); k++) {
+    const back = tick - (missed + 1 - k);
+    if (back >= 0) state.roundMemory[signal * length + (back % length)] += k * step;
+  }
+}
+
 /** z(t) − w z(t − W), from the memory. */
 export function restOf(round: Round, state: FilterState, signal: number, tick: number): number {
   const length = round.ticks + 1;

@@ -133,6 +133,7 @@ export const switchedKernel: Kernel<SwitchedModel, SwitchedKernelCore> = {
     settleInput(model.switched, core.section, channel, state.value);
     core.isDue = true;
   },
+  bridge: (model, core, channel, missed, step) => linearKernel.bridge?.(asLinear(model), core, channel, missed, step),
   advance(model, core, state, channel) {
     linearKernel.advance(asLinear(model), core, state, channel);
     core.isDue = true;

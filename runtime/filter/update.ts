@@ -9,7 +9,7 @@ import { predictStandardised } from './forecast.ts';
 import { kernelOf } from './kernels.ts';
 import type { CommonModel, Model } from './model.ts';
 import { countRepeats, standsStill } from './repeats.ts';
-import { advanceRound, isFirstRound } from './round.ts';
+import { advanceRound, bridgeRound, isFirstRound } from './round.ts';
 import { type FilterState, FOLDED, fadeTicks, MISSING, PASSED_OVER, STUCK } from './state.ts';
 
 /**
@@ -61,15 +61,31 @@ function observe(model: Model, state: FilterState, c: number, tick: number, read
     return;
   }
   state.observed[c] = FOLDED;
+  const missed = state.age[c];
   state.age[c] = 0;
   state.lean[c] = 0;
   if (!isFar && state.passed[c] > 0) state.passed[c]--;
   state.value[c] = z;
   const isFirst = state.started[c] === 0;
   state.started[c] = 1;
+  if (missed > 0 && !isFirst) bridgeGap(model, state, c, tick, missed);
   takeRound(model, state, c, tick, z);
   if (isFirst) kernelOf(model).settle(model, state.core, state, c);
   else kernelOf(model).advance(model, state.core, state, c);
+}
+
+/**
+ * What stood in for missed readings was a forecast, and at the first reading after them it turns out by how much it was off.
+ * As in a random walk tied at both ends, the error is taken to have grown by even steps, and the memories are moved as if
+ * the values folded in had been so. Not after gaps so long that forecasts had begun to fade.
+ */
+function bridgeGap(model: Model, state: FilterState, c: number, tick: number, missed: number): void {
+  const { bridge } = kernelOf(model);
+  if (model.bridgesGaps !== true || bridge === undefined || c >= model.signalCount) return;
+  if (missed > fadeTicks(model)) return;
+  const step = state.innovation[c] / (missed + 1);
+  bridge(model, state.core, c, missed, step);
+  if (model.round !== undefined) bridgeRound(model.round, state, c, tick, missed, step);
 }
 
 function guardLimit(model: CommonModel, state: FilterState, c: number): number {

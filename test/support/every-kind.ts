@@ -84,6 +84,7 @@ function guarded(bundle: Bundle): Bundle {
     guard: {
       ...bundle.guard,
       confirmsJumps: true,
+      bridgesGaps: true,
       stuck: signals.map(() => 6),
       rests: signals.map((_, i) => (i === 0 ? [] : [bundle.channels[i]!.clip[0]])),
       stuckActs: true,

@@ -113,6 +113,7 @@ export function commonPart(around: Surroundings, calibration: Calibration): Omit
     rejectSd: calibration.rejectSd,
     rejectMaxTicks: calibration.rejectMaxTicks,
     confirmsJumps: true,
+    bridgesGaps: true,
     warmupTicks: around.warmupTicks,
     ...(around.agreement === null ? {} : { agreement: around.agreement }),
     ...(calibration.boundsLongRate === undefined ? {} : { boundsLongRate: calibration.boundsLongRate }),
