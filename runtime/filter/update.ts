@@ -68,7 +68,7 @@ function observe(model: Model, state: FilterState, c: number, tick: number, read
   state.value[c] = z;
   const isFirst = state.started[c] === 0;
   state.started[c] = 1;
-  if (missed > 0 && !isFirst) bridgeGap(model, state, c, tick, missed);
+  if (missed > 0 && !isFirst && !isFar) bridgeGap(model, state, c, tick, missed);
   takeRound(model, state, c, tick, z);
   if (isFirst) kernelOf(model).settle(model, state.core, state, c);
   else kernelOf(model).advance(model, state.core, state, c);
@@ -77,7 +77,8 @@ function observe(model: Model, state: FilterState, c: number, tick: number, read
 /**
  * What stood in for missed readings was a forecast, and at the first reading after them it turns out by how much it was off.
  * As in a random walk tied at both ends, the error is taken to have grown by even steps, and the memories are moved as if
- * the values folded in had been so. Not after gaps so long that forecasts had begun to fade.
+ * the values folded in had been so. Not after gaps so long that forecasts had begun to fade, nor by a reading that is itself
+ * beyond the guard.
  */
 function bridgeGap(model: Model, state: FilterState, c: number, tick: number, missed: number): void {
   const { bridge } = kernelOf(model);
