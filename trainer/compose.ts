@@ -23,7 +23,7 @@ import type { Verdicts } from './judge/gate.ts';
 import type { Hindcast } from './judge/hindcast.ts';
 import { skillScore } from './judge/scores.ts';
 import type { KindSections } from './kinds/candidate.ts';
-import type { Calibration, Surroundings } from './quantise/float-model.ts';
+import { type Calibration, GUARD_RULES, type Surroundings } from './quantise/float-model.ts';
 
 /** Everything a document is made of. */
 export interface Composition {
@@ -157,8 +157,7 @@ function guardOf({ rejectSd, rejectMaxTicks, stuck }: Calibration): Bundle['guar
   return {
     rejectSd,
     maxTicks: rejectMaxTicks,
-    confirmsJumps: true,
-    bridgesGaps: true,
+    ...GUARD_RULES,
     ...(stuck === undefined
       ? {}
       : {

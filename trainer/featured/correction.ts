@@ -4,7 +4,7 @@
  */
 import { dequantise, quantiseTensor, type Tensor } from '@stillwell/protocol';
 import { cholesky, solveCholesky } from '../linalg/cholesky.ts';
-import { symmetricEigen } from '../linalg/eigen.ts';
+import { symmetricEigen, symmetrised } from '../linalg/eigen.ts';
 import { multiply, multiplyTransposed, transpose } from '../linalg/products.ts';
 import { replacements, roundRows } from '../quantise/feedback.ts';
 import { type FeatureMap, type FeatureMoments, featureError } from './feature-moments.ts';
@@ -167,8 +167,4 @@ function negativeMeans({ sum, origins }: FeatureMoments, projection: Float64Arra
     for (let j = 0; j < D; j++) mean += projection[k * D + j] * sum[j];
     return -mean / origins;
   });
-}
-
-function symmetrised(a: Float64Array, n: number): Float64Array {
-  return a.map((value, k) => 0.5 * (value + a[(k % n) * n + Math.floor(k / n)]));
 }

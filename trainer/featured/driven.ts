@@ -2,7 +2,9 @@
  * The driven kind as a candidate: short records of plants whose inputs make the signals. A linear simulation comes first; if
  * the inputs do not explain the signals with that, nothing more is tried.
  */
+
 import type { Attempt, Candidate } from '../kinds/candidate.ts';
+import { joined } from '../linalg/joined.ts';
 import { type DrivenParts, drivenModel, drivenSection } from './driven-parts.ts';
 import { type Effort, type Planned, planEffort } from './effort.ts';
 import {
@@ -166,8 +168,4 @@ function recordOf({ prepared, around }: Attempt, start: number, end: number): Dr
 
 function difference(y: Float64Array, run: Float64Array): Float64Array {
   return run.map((value, t) => y[t] - value);
-}
-
-function joined(parts: readonly Float64Array[]): Float64Array {
-  return Float64Array.from(parts.flatMap((part) => Array.from(part)));
 }

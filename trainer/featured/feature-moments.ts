@@ -2,23 +2,13 @@
  * Second moments of random features and of what they are to explain, group by group, so that folds, penalties and read-outs
  * are small algebra.
  */
+import type { FeatureTensors } from '@stillwell/protocol';
 import { SUMMARY_LIMIT, scaledFeatures } from '@stillwell/runtime/filter';
 import { addLowerGram } from '../linalg/gram.ts';
 import type { Origins } from './origins.ts';
 
-/** What the features see, and how many there are. */
-export interface FeatureSetting {
-  readonly seed: number;
-  readonly count: number;
-  /** Leading predictive states. */
-  readonly states: number;
-  /** Channels whose values follow, rising. */
-  readonly channels: readonly number[];
-  /** Ticks, rising: their values at each of these follow. */
-  readonly lags: readonly number[];
-  /** (q) one over the kernel's width along each number of the summary. */
-  readonly scale: readonly number[];
-}
+/** What the features see, and how many there are: the part of the bundle's section that is chosen, not learned. */
+export type FeatureSetting = Pick<FeatureTensors, 'seed' | 'count' | 'states' | 'channels' | 'lags' | 'scale'>;
 
 /** Sums over origins. D regressors, m targets. */
 export interface FeatureMoments {

@@ -3,9 +3,9 @@
  * of what the path missed. Tried on a coarse ladder, then tick by tick around its best rung.
  */
 import { cholesky, solveCholesky } from '../linalg/cholesky.ts';
-import { penalised } from './plan-folds.ts';
 import type { PlanOrigins } from './plan-origins.ts';
 import { filterInto } from './plan-surprise.ts';
+import { penalised } from './ridge.ts';
 
 const LADDER = [0, 1, 2, 3, 4, 6, 8, 12, 16, 24, 32, 48, 64, 96, 128, 192, 256, 384, 512] as const;
 /** Delays tried between the rungs around the best. */

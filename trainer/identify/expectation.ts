@@ -6,8 +6,9 @@
 import { cholesky, solveCholesky, solveLowerTransposed } from '../linalg/cholesky.ts';
 import { symmetricEigen } from '../linalg/eigen.ts';
 import { multiply } from '../linalg/products.ts';
-import { type PlanFolds, penalised } from './plan-folds.ts';
+import type { PlanFolds } from './plan-folds.ts';
 import type { PlanOrigins } from './plan-origins.ts';
+import { penalised } from './ridge.ts';
 import { geometricMean } from './sure-gain.ts';
 
 /** Expected input(t + h) = input(t) + Σ_k basis[k, h-1] (readout seen)_k, standardised. */

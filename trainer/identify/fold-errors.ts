@@ -13,7 +13,7 @@ export interface Fold {
 export type FoldErrors = readonly Float64Array[];
 
 /** Student's t, one-sided, by chance of error and degrees of freedom from 1 (any table); for more than 7, that of 7. */
-const STUDENT = {
+export const STUDENT = {
   0.1: [3.078, 1.886, 1.638, 1.533, 1.476, 1.44, 1.415],
   0.05: [6.314, 2.92, 2.353, 2.132, 2.015, 1.943, 1.895],
   0.005: [63.657, 9.925, 5.841, 4.604, 4.032, 3.707, 3.499],

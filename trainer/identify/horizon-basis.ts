@@ -4,7 +4,7 @@
  * by least squares on the curves as they stand, so rounding the curves first costs nothing twice.
  */
 import { cholesky, solveCholesky } from '../linalg/cholesky.ts';
-import { symmetricEigen } from '../linalg/eigen.ts';
+import { symmetricEigen, symmetrised } from '../linalg/eigen.ts';
 import { multiply, transpose } from '../linalg/products.ts';
 import { type StateMoments, stepWeight } from './bottleneck.ts';
 import type { Layout } from './ridge.ts';
@@ -129,10 +129,4 @@ export function onCurves(map: Float64Array, curves: Float64Array, steps: number,
   const layout = { channelCount: 1, signalCount: 1, featureCount: 1, steps };
   const rows = map.length / steps;
   return transpose(curveCoefficients(transpose(map, rows, steps), curves, rows, layout, count), count, rows);
-}
-
-function symmetrised(a: Float64Array, n: number): Float64Array {
-  const out = a.slice();
-  for (let i = 0; i < n; i++) for (let j = 0; j < n; j++) out[i * n + j] = 0.5 * (a[i * n + j] + a[j * n + i]);
-  return out;
 }

@@ -6,9 +6,10 @@
 import { cholesky, solveCholesky } from '../linalg/cholesky.ts';
 import { multiply } from '../linalg/products.ts';
 import type { ExpectationMap } from './expectation.ts';
-import { type PlanFolds, penalised } from './plan-folds.ts';
+import { errorOf, joinSums, type PlanFolds, type PlanSums } from './plan-folds.ts';
 import type { PlanOrigins } from './plan-origins.ts';
 import { filterInto } from './plan-surprise.ts';
+import { penalised } from './ridge.ts';
 import { gainsSurely, sureGain } from './sure-gain.ts';
 
 const PENALTIES = [1e-3, 1e-2, 1e-1, 1, 10] as const;
@@ -23,13 +24,6 @@ export interface PlanAnswer {
   /** (ny × np) */
   readonly delay: Int32Array;
   readonly decays: readonly number[];
-}
-
-/** Moments of one group of origins. */
-interface Sums {
-  readonly gram: Float64Array;
-  readonly right: Float64Array;
-  energy: number;
 }
 
 /**
@@ -58,14 +52,14 @@ export function impliedExpectation(
   const without = folds.each((_, judged) => groups[judged].energy);
   const errors = PENALTIES.map((penalty) =>
     folds.each((learned, judged) => {
-      const moves = amplitudes(joined(learned.map((g) => groups[g])), effect, K, penalty);
+      const moves = amplitudes(joinSums(learned.map((g) => groups[g])), effect, K, penalty);
       return errorOf(groups[judged], effectMap(moves, effect, K));
     }),
   );
   const sure = errors.map((perFold) => sureGain(perFold, without));
   const best = sure.indexOf(Math.max(...sure));
   if (!gainsSurely(errors[best], without, LEAST_GAIN)) return expected;
-  const moves = amplitudes(joined(groups), effect, K, PENALTIES[best]);
+  const moves = amplitudes(joinSums(groups), effect, K, PENALTIES[best]);
   const moved = multiply(moves, curves, origins.seenCount, K, horizon);
   return { gram: expected.gram, map: expected.map.map((value, k) => value + moved[k]) };
 }
@@ -116,10 +110,10 @@ function gatherSums(
   left: Float64Array,
   which: number,
   planned: number,
-): Sums[] {
+): PlanSums[] {
   const { seen, seenCount: q, count } = origins;
   const width = left.length / Math.max(1, count);
-  const sums: Sums[] = Array.from({ length: folds.groups + 1 }, () => ({
+  const sums: PlanSums[] = Array.from({ length: folds.groups + 1 }, () => ({
     gram: new Float64Array(q * q),
     right: new Float64Array(q * width),
     energy: 0,
@@ -138,17 +132,8 @@ function gatherSums(
   return sums;
 }
 
-function joined(parts: readonly Sums[]): Sums {
-  const out: Sums = { gram: parts[0].gram.slice(), right: parts[0].right.slice(), energy: 0 };
-  for (const part of parts.slice(1)) {
-    for (let k = 0; k < out.gram.length; k++) out.gram[k] += part.gram[k];
-    for (let k = 0; k < out.right.length; k++) out.right[k] += part.right[k];
-  }
-  return out;
-}
-
 /** (q × K) amplitudes of the curves whose effect comes nearest to what was left, step by step, of what is seen. */
-function amplitudes({ gram, right }: Sums, effect: Float64Array, K: number, penalty: number): Float64Array {
+function amplitudes({ gram, right }: PlanSums, effect: Float64Array, K: number, penalty: number): Float64Array {
   const q = Math.round(Math.sqrt(gram.length));
   const width = right.length / q;
   const map = right.slice();
@@ -172,12 +157,4 @@ function amplitudes({ gram, right }: Sums, effect: Float64Array, K: number, pena
 /** (q × ny·S) */
 function effectMap(moves: Float64Array, effect: Float64Array, K: number): Float64Array {
   return multiply(moves, effect, moves.length / K, K, effect.length / K);
-}
-
-function errorOf({ gram, right, energy }: Sums, map: Float64Array): number {
-  const q = Math.round(Math.sqrt(gram.length));
-  const pushed = multiply(gram, map, q, q, map.length / q);
-  let error = energy;
-  for (let k = 0; k < map.length; k++) error += map[k] * (pushed[k] - 2 * right[k]);
-  return Math.max(0, error);
 }

@@ -3,6 +3,8 @@
  * before it.
  */
 
+import { multiply } from '../linalg/products.ts';
+
 /** A cut of the origins. */
 export interface PlanFolds {
   readonly groups: number;
@@ -49,23 +51,47 @@ export function cutFolds(at: Int32Array, horizon: number): PlanFolds {
   };
 }
 
-/** A diagonal entry below this share of the largest counts as this share, so that a silent one is held at zero. */
-const SILENT_SHARE = 1e-12;
+/** Sums behind a ridge solve of one group of origins. */
+export interface PlanSums {
+  /** (n × n) regressors by regressors. */
+  readonly gram: Float64Array;
+  /** (n × targets) */
+  readonly right: Float64Array;
+  /** Squared targets. */
+  energy: number;
+}
 
 /**
- * Moments with a ridge: a copy, each diagonal entry raised by a share of itself.
+ * The sums of several groups together, but for the energy, which only judges.
  *
- * shapes  gram (n × n); result likewise
- * units   any
+ * shapes  all alike, at least one
+ * units   as PlanSums
  * throws  nothing
- * source  Hoerl & Kennard, Technometrics 12 (1970), with k times each second moment
- * cost    O(n²)
+ * source  definition
+ * cost    O(n²) a group
  */
-export function penalised(gram: Float64Array, n: number, penalty: number): Float64Array {
-  const out = gram.slice();
-  let largest = 0;
-  for (let a = 0; a < n; a++) largest = Math.max(largest, gram[a * n + a]);
-  const floor = largest > 0 ? largest * SILENT_SHARE : 1;
-  for (let a = 0; a < n; a++) out[a * n + a] += Math.max(penalty * gram[a * n + a], floor);
+export function joinSums(parts: readonly PlanSums[]): PlanSums {
+  const out: PlanSums = { gram: parts[0].gram.slice(), right: parts[0].right.slice(), energy: 0 };
+  for (const part of parts.slice(1)) {
+    for (let k = 0; k < out.gram.length; k++) out.gram[k] += part.gram[k];
+    for (let k = 0; k < out.right.length; k++) out.right[k] += part.right[k];
+  }
   return out;
+}
+
+/**
+ * Squared error that a map leaves of a group, by its sums alone.
+ *
+ * shapes  map (n × targets)
+ * units   squared targets, summed
+ * throws  nothing
+ * source  definition
+ * cost    O(n² targets)
+ */
+export function errorOf({ gram, right, energy }: PlanSums, map: Float64Array): number {
+  const n = Math.round(Math.sqrt(gram.length));
+  const pushed = multiply(gram, map, n, n, map.length / n);
+  let error = energy;
+  for (let k = 0; k < map.length; k++) error += map[k] * (pushed[k] - 2 * right[k]);
+  return Math.max(0, error);
 }

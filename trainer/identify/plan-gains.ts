@@ -3,9 +3,10 @@
  * surely on rolling origins, and no gain at all where none surely does.
  */
 import { cholesky, solveCholesky } from '../linalg/cholesky.ts';
-import { type PlanFolds, penalised } from './plan-folds.ts';
+import { errorOf, joinSums, type PlanFolds, type PlanSums } from './plan-folds.ts';
 import type { PlanOrigins } from './plan-origins.ts';
 import { filterInto } from './plan-surprise.ts';
+import { penalised } from './ridge.ts';
 import { gainsSurely, geometricMean, sureGain } from './sure-gain.ts';
 
 /** Up to heavy ones: where the answer changes with the season, a small part of it is all that is sure. */
@@ -19,13 +20,6 @@ const LEAST_GAIN = 0.01;
 export interface PlanGains {
   readonly gain: Float64Array;
   readonly ratio: readonly number[];
-}
-
-/** Moments of one group: of the filters, their products with what was missed, and its squares. */
-interface Sums {
-  readonly gram: Float64Array;
-  readonly right: Float64Array;
-  energy: number;
 }
 
 /**
@@ -56,21 +50,21 @@ export function learnGains(
     const chosen = choosePenalty(folds, groups, width);
     ratio.push(chosen.ratio);
     // The last group holds the origins between groups, which serve here alone.
-    if (chosen.penalty !== null) gain.set(solve(joined(groups), width, chosen.penalty), i * width);
+    if (chosen.penalty !== null) gain.set(solve(joinSums(groups), width, chosen.penalty), i * width);
   }
   return { gain, ratio };
 }
 
 function choosePenalty(
   folds: PlanFolds,
-  groups: readonly Sums[],
+  groups: readonly PlanSums[],
   width: number,
 ): { readonly penalty: number | null; readonly ratio: number } {
   const without = folds.each((_, judged) => groups[judged].energy);
   const errors = PENALTIES.map((penalty) =>
     folds.each((learned, judged) => {
-      const gains = solve(joined(learned.map((g) => groups[g])), width, penalty);
-      return errorOf(groups[judged], gains, width);
+      const gains = solve(joinSums(learned.map((g) => groups[g])), width, penalty);
+      return errorOf(groups[judged], gains);
     }),
   );
   const sure = errors.map((perFold) => sureGain(perFold, without));
@@ -90,11 +84,11 @@ function gatherSums(
   horizon: number,
   decays: readonly number[],
   delay: Int32Array,
-): Sums[] {
+): PlanSums[] {
   const { steps, missed } = origins;
   const f = decays.length + 2;
   const width = np * f;
-  const sums: Sums[] = Array.from({ length: folds.groups + 1 }, () => ({
+  const sums: PlanSums[] = Array.from({ length: folds.groups + 1 }, () => ({
     gram: new Float64Array(width * width),
     right: new Float64Array(width),
     energy: 0,
@@ -122,27 +116,8 @@ function gatherSums(
   return sums;
 }
 
-function joined(parts: readonly Sums[]): Sums {
-  const out: Sums = { gram: parts[0].gram.slice(), right: parts[0].right.slice(), energy: 0 };
-  for (const part of parts.slice(1)) {
-    for (let k = 0; k < out.gram.length; k++) out.gram[k] += part.gram[k];
-    for (let k = 0; k < out.right.length; k++) out.right[k] += part.right[k];
-  }
-  return out;
-}
-
-function solve({ gram, right }: Sums, width: number, penalty: number): Float64Array {
+function solve({ gram, right }: PlanSums, width: number, penalty: number): Float64Array {
   const gains = right.slice();
   solveCholesky(cholesky(penalised(gram, width, penalty), width), width, gains, 1);
   return gains;
-}
-
-function errorOf({ gram, right, energy }: Sums, gains: Float64Array, width: number): number {
-  let error = energy;
-  for (let a = 0; a < width; a++) {
-    let pushed = 0;
-    for (let b = 0; b < width; b++) pushed += gram[a * width + b] * gains[b];
-    error += gains[a] * (pushed - 2 * right[a]);
-  }
-  return Math.max(0, error);
 }

@@ -7,7 +7,7 @@
  * by projecting with what the reduced recursion shares with the bank, which lowers the error of the forecast itself.
  */
 import { cholesky, solveLowerTransposed } from '../linalg/cholesky.ts';
-import { symmetricEigen } from '../linalg/eigen.ts';
+import { symmetricEigen, symmetrised } from '../linalg/eigen.ts';
 import { solveStein } from '../linalg/lyapunov.ts';
 import { type ModalRecursion, modalForm } from '../linalg/modal.ts';
 import { applyModes, type Modes, spectralRadius, transposeModes } from '../linalg/modes.ts';
@@ -258,11 +258,5 @@ function raised(covariance: Float64Array, n: number): Float64Array {
   for (let k = 0; k < n; k++) {
     out[k * n + k] += RAISED * (largest > 0 ? Math.max(out[k * n + k], SILENT * largest) : 1);
   }
-  return out;
-}
-
-function symmetrised(a: Float64Array, n: number): Float64Array {
-  const out = new Float64Array(n * n);
-  for (let i = 0; i < n; i++) for (let j = 0; j < n; j++) out[i * n + j] = 0.5 * (a[i * n + j] + a[j * n + i]);
   return out;
 }

@@ -253,6 +253,21 @@ export function mapError(moments: Moments, layout: Layout, map: Float64Array): F
   return out;
 }
 
+/**
+ * Moments with a ridge: a copy, each diagonal entry raised by a share of itself.
+ *
+ * shapes  gram (n × n); result likewise
+ * units   any
+ * throws  nothing
+ * source  Hoerl & Kennard, Technometrics 12 (1970), with k times each second moment
+ * cost    O(n²)
+ */
+export function penalised(gram: Float64Array, n: number, penalty: number): Float64Array {
+  const out = gram.slice();
+  addPenalty(out, n, penalty);
+  return out;
+}
+
 function addPenalty(gram: Float64Array, n: number, penalty: number): void {
   let largest = 0;
   for (let a = 0; a < n; a++) largest = Math.max(largest, gram[a * n + a]);

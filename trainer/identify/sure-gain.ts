@@ -1,9 +1,12 @@
 /**
- * Whether a choice surely beats another over the folds of a rolling origin: where folds disagree, it would follow chance.
+ * Sure gains where every fold counts alike: what fold-errors.ts says for weights of folds, with even ones.
  */
+import { type FoldWeights, gainsSurely as gainsSurelyWeighted, powerMean, STUDENT } from './fold-errors.ts';
 
-/** Student's t at 90 %, one-sided, by degrees of freedom from 1 (any table); more folds than these there are never. */
-const STUDENT_90 = [3.078, 1.886, 1.638, 1.533, 1.476, 1.44, 1.415] as const;
+/** Every fold alike, averaged geometrically. */
+function evenly(folds: number): FoldWeights {
+  return { shares: new Array<number>(folds).fill(1 / folds), power: 0, doubt: 1 };
+}
 
 /**
  * Whether one choice's errors lie below another's: by more than a share on geometric average, and by more than folds that
@@ -12,12 +15,11 @@ const STUDENT_90 = [3.078, 1.886, 1.638, 1.533, 1.476, 1.44, 1.415] as const;
  * shapes  errors, others (folds), at most 8
  * units   squared errors of the same signal
  * throws  nothing
- * source  paired t test on logarithms: Student, Biometrika 6 (1908)
+ * source  as `gainsSurely` of fold-errors.ts
  * cost    trivial
  */
 export function gainsSurely(errors: readonly number[], others: readonly number[], share: number): boolean {
-  const gains = gainsOf(errors, others);
-  return meanOf(gains) > -Math.log(1 - share) && sureGain(errors, others) >= 0;
+  return gainsSurelyWeighted(errors, others, share, evenly(errors.length));
 }
 
 /**
@@ -31,20 +33,12 @@ export function gainsSurely(errors: readonly number[], others: readonly number[]
  * cost    trivial
  */
 export function sureGain(errors: readonly number[], others: readonly number[]): number {
-  const gains = gainsOf(errors, others);
+  const gains = errors.map((error, f) => logOf(others[f]) - logOf(error));
   const freedom = gains.length - 1;
-  const mean = meanOf(gains);
+  const mean = gains.reduce((sum, gain) => sum + gain, 0) / gains.length;
   if (freedom === 0) return mean;
   const squares = gains.reduce((sum, gain) => sum + (gain - mean) * (gain - mean), 0);
-  return mean - STUDENT_90[freedom - 1] * Math.sqrt(squares / (freedom * gains.length));
-}
-
-function gainsOf(errors: readonly number[], others: readonly number[]): number[] {
-  return errors.map((error, f) => logOf(others[f]) - logOf(error));
-}
-
-function meanOf(values: readonly number[]): number {
-  return values.reduce((sum, value) => sum + value, 0) / values.length;
+  return mean - STUDENT[0.1][Math.min(freedom, 7) - 1] * Math.sqrt(squares / (freedom * gains.length));
 }
 
 /**
@@ -57,9 +51,7 @@ function meanOf(values: readonly number[]): number {
  * cost    trivial
  */
 export function geometricMean(values: readonly number[]): number {
-  let sum = 0;
-  for (const value of values) sum += logOf(value);
-  return Math.exp(sum / values.length);
+  return powerMean(values, evenly(values.length));
 }
 
 function logOf(value: number): number {

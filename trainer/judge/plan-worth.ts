@@ -3,12 +3,10 @@
  * plan that was not kept. The second must lie below the first; the third shows what trusting a wrong plan costs.
  */
 import type { Model } from '@stillwell/runtime/filter';
-import { withoutExcluded } from '../exclusions.ts';
 import type { Series } from '../history/series.ts';
 import type { TickSpan } from '../span.ts';
 import { type PlanTrial, plannerOf } from './plan-trial.ts';
-import { replayPaths } from './replay.ts';
-import { meanOf, Scores } from './scores.ts';
+import { bySignal, replayMse } from './replay-scores.ts';
 
 /**
  * shapes  mse of each trial (ny × H), entry i·H + h - 1; mean (ny) over the steps
@@ -54,23 +52,11 @@ export function planWorth(model: Model, series: Series, span: TickSpan, planned:
   if (reached.length === 0) return null;
   const { signalCount: ny, horizon: H } = model;
   const count = span.toTick - span.fromTick - H + 1;
-  const judged = withoutExcluded(series);
   const every = Math.max(1, Math.ceil(count / MOST_ORIGINS));
   const trial = (name: PlanTrial) => {
-    const scores = new Scores(ny * H);
     const planner = plannerOf(name, model, series, span, reached);
-    const visited = { fromTick: span.fromTick - 1, toTick: span.toTick - H };
-    replayPaths(
-      model,
-      series,
-      visited,
-      ({ at, median }) => {
-        if ((at - visited.fromTick) % every === 0) scorePath(model, judged, at, median, scores);
-      },
-      planner,
-    );
-    const mse = scores.mse();
-    return { mse, mean: Array.from({ length: ny }, (_, i) => meanOf(mse, i * H, (i + 1) * H)) };
+    const mse = replayMse(model, series, span, { planner, every });
+    return { mse, mean: Array.from(bySignal(model, mse)) };
   };
   return {
     signals: series.names.slice(0, ny),
@@ -78,18 +64,6 @@ export function planWorth(model: Model, series: Series, span: TickSpan, planned:
     origins: Math.ceil(count / every),
     trials: { none: trial('none'), perfect: trial('perfect'), wrong: trial('wrong') },
   };
-}
-
-function scorePath(model: Model, series: Series, at: number, median: Float64Array, scores: Scores): void {
-  const { signalCount: ny, horizon: H, clipLow, clipHigh, scale } = model;
-  for (let h = 1; h <= H; h++) {
-    for (let i = 0; i < ny; i++) {
-      const reading = series.values[i][at + h];
-      if (Number.isNaN(reading)) continue;
-      const clipped = Math.min(clipHigh[i], Math.max(clipLow[i], reading));
-      scores.add(i * H + h - 1, (median[i * H + h - 1] - clipped) / scale[i]);
-    }
-  }
 }
 
 /**

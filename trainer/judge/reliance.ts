@@ -5,8 +5,8 @@
  */
 import type { Model } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
-import { signalErrors } from '../quantise/audit.ts';
 import type { TickSpan } from '../span.ts';
+import { signalErrors } from './replay-scores.ts';
 
 /** What losing a channel costs. */
 export interface Reliance {
@@ -45,7 +45,7 @@ export function reliance(model: Model, series: Series, span: TickSpan): Reliance
   const whole = signalErrors(model, series, judged);
   const ratio = new Float64Array(ny * nc);
   for (let c = 0; c < nc; c++) {
-    const without = signalErrors(model, series, judged, silenced(series, c, judged.fromTick - silence));
+    const without = signalErrors(model, series, judged, { seen: silenced(series, c, judged.fromTick - silence) });
     for (let i = 0; i < ny; i++) ratio[i * nc + c] = whole[i] > 0 ? without[i] / whole[i] : Number.NaN;
   }
   return { channels: series.names, ratio, origins: ticks - H + 1 };

@@ -1,8 +1,10 @@
 /**
  * Gathers what a hindcast is made of, origin by origin.
  */
+
 import type { Model } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
+import { joined } from '../linalg/joined.ts';
 import { Coverage } from './coverage.ts';
 import type { Hindcast, HindcastPath } from './hindcast.ts';
 import type { Moment } from './replay.ts';
@@ -160,14 +162,4 @@ export class Tally {
       rivalPathLoss: this.#rivalLosses.map((losses) => Float64Array.from(losses)),
     };
   }
-}
-
-function joined(parts: readonly Float64Array[]): Float64Array {
-  const out = new Float64Array(parts.reduce((sum, part) => sum + part.length, 0));
-  let at = 0;
-  for (const part of parts) {
-    out.set(part, at);
-    at += part.length;
-  }
-  return out;
 }

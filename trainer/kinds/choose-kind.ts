@@ -8,8 +8,8 @@ import { TrainError } from '../errors.ts';
 import { tryDriven } from '../featured/driven.ts';
 import { tryFeatured } from '../featured/featured.ts';
 import { plannerOf } from '../judge/plan-trial.ts';
+import { signalErrors } from '../judge/replay-scores.ts';
 import { learnPlans, plannedInputs } from '../plans.ts';
-import { signalErrors } from '../quantise/audit.ts';
 import { trySwitched } from '../switched/switched.ts';
 import type { Attempt, Candidate, TryKind } from './candidate.ts';
 import { tryDense } from './dense.ts';
@@ -134,7 +134,7 @@ function calibrationErrors(attempt: Attempt, candidate: Candidate): Float64Array
   const { response } = learnPlans(candidate, prepared, prepared.learnTicks, planned);
   const model = response === null ? rounded : { ...rounded, response: response.model };
   const planner = plannerOf('perfect', model, prepared.calm, { fromTick, toTick }, planned);
-  const under = signalErrors(model, prepared.calm, { fromTick, toTick }, prepared.calm, planner);
+  const under = signalErrors(model, prepared.calm, { fromTick, toTick }, { planner });
   return without.map((error, i) => Math.sqrt(error * under[i]));
 }
 

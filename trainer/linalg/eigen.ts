@@ -47,6 +47,21 @@ export function symmetricEigen(a: Float64Array, n: number): SymmetricEigen {
 }
 
 /**
+ * The symmetric part of a matrix, (A + A')/2: what rounding left of a symmetric one.
+ *
+ * shapes  a (n × n); result likewise
+ * units   any
+ * throws  nothing
+ * source  definition
+ * cost    O(n²)
+ */
+export function symmetrised(a: Float64Array, n: number): Float64Array {
+  const out = new Float64Array(n * n);
+  for (let i = 0; i < n; i++) for (let j = 0; j < n; j++) out[i * n + j] = 0.5 * (a[i * n + j] + a[j * n + i]);
+  return out;
+}
+
+/**
  * Refuses a matrix with an entry that is not a finite number.
  *
  * shapes  a of any length

@@ -6,9 +6,6 @@
 import { createBounds, createState, forecastPath, intervalOf, type Model, update } from '@stillwell/runtime/filter';
 import { TrainError } from '../errors.ts';
 import type { Series } from '../history/series.ts';
-import type { Planner } from '../judge/plan-trial.ts';
-import { type PathMoment, replayPaths } from '../judge/replay.ts';
-import { meanOf, Scores } from '../judge/scores.ts';
 import type { TickSpan } from '../span.ts';
 
 /** Standardised mean squared errors over signals and steps of the judged part. */
@@ -17,65 +14,6 @@ export interface Audit {
   readonly quantisedMse: number;
   /** quantisedMse / floatMse. */
   readonly ratio: number;
-}
-
-/**
- * Standardised mean squared error of a model over a span, all signals and steps; pairs in excluded time do not count.
- *
- * shapes  span of indices into the series
- * units   standardised²
- * throws  FilterError if the model does not fit the series
- * source  none
- * cost    one replay
- */
-export function replayError(model: Model, series: Series, span: TickSpan): number {
-  return meanOf(replayScores(model, series, span, series).mse());
-}
-
-/**
- * The same by signal; `seen` is what the filter sees where that is not the series it is scored against, `planner` what it is
- * told of the inputs' future.
- *
- * shapes  span of indices into the series; seen like the series; result (ny), NaN where nothing was read
- * units   standardised²
- * throws  FilterError if the model does not fit the series
- * source  none
- * cost    one replay
- */
-export function signalErrors(
-  model: Model,
-  series: Series,
-  span: TickSpan,
-  seen: Series = series,
-  planner: Planner | null = null,
-): Float64Array {
-  const { signalCount: ny, horizon: H } = model;
-  const mse = replayScores(model, series, span, seen, planner).mse();
-  return Float64Array.from({ length: ny }, (_, i) => meanOf(mse, i * H, (i + 1) * H));
-}
-
-function replayScores(
-  model: Model,
-  series: Series,
-  span: TickSpan,
-  seen: Series,
-  planner: Planner | null = null,
-): Scores {
-  const { signalCount: ny, horizon: H } = model;
-  const scores = new Scores(ny * H);
-  const score = ({ at, median }: PathMoment): void => {
-    if (series.excluded?.isExcluded[at] === 1) return;
-    for (let i = 0; i < ny; i++) {
-      for (let h = 1; h <= H; h++) {
-        const reading = series.values[i][at + h];
-        if (Number.isNaN(reading) || series.excluded?.isExcluded[at + h] === 1) continue;
-        const clipped = Math.min(model.clipHigh[i], Math.max(model.clipLow[i], reading));
-        scores.add(i * H + h - 1, (median[i * H + h - 1] - clipped) / model.scale[i]);
-      }
-    }
-  };
-  replayPaths(model, seen, { fromTick: span.fromTick - 1, toTick: span.toTick - H }, score, planner);
-  return scores;
 }
 
 /**

@@ -27,6 +27,9 @@ export interface Surroundings {
   readonly round: Round | null;
 }
 
+/** How every model made here guards itself, beside what calibration finds. */
+export const GUARD_RULES = { confirmsJumps: true, bridgesGaps: true } as const;
+
 /** What calibration finds; `OPEN` before it has run. */
 export interface Calibration {
   /** (nc) standardised */
@@ -112,8 +115,7 @@ export function commonPart(around: Surroundings, calibration: Calibration): Omit
     radius: calibration.radius,
     rejectSd: calibration.rejectSd,
     rejectMaxTicks: calibration.rejectMaxTicks,
-    confirmsJumps: true,
-    bridgesGaps: true,
+    ...GUARD_RULES,
     warmupTicks: around.warmupTicks,
     ...(around.agreement === null ? {} : { agreement: around.agreement }),
     ...(calibration.boundsLongRate === undefined ? {} : { boundsLongRate: calibration.boundsLongRate }),

@@ -1,9 +1,9 @@
 /** The featured kind: a chaotic plant that no linear map follows, and a linear one that needs nothing more. */
 import { beforeAll, describe, expect, test } from 'vitest';
 import { tryFeatured } from '../../../trainer/featured/featured.ts';
+import { replayError } from '../../../trainer/judge/replay-scores.ts';
 import type { Attempt, Candidate } from '../../../trainer/kinds/candidate.ts';
 import { tryLinear } from '../../../trainer/kinds/linear.ts';
-import { replayError } from '../../../trainer/quantise/audit.ts';
 import { attemptOf } from '../../support/attempt.ts';
 import { chaoticSeries, linearSeries } from './support.ts';
 
