@@ -1,5 +1,6 @@
 /** The report: what it says at a glance, that the worst day comes first, and that nothing in it is undefined. */
 import { beforeAll, describe, expect, test } from 'vitest';
+import { spellName, worstSpells } from '../../../trainer/judge/worst-days.ts';
 import { FIT_DEFAULTS, type FitResult, fit as fitHistory } from '../../../trainer/pipeline.ts';
 import { leansOn, trustedSteps } from '../../../trainer/report/glance.ts';
 import { fitReport } from '../../../trainer/report/page.ts';
@@ -52,6 +53,8 @@ describe('the page', () => {
     const before = new Date(Date.parse(worst) - 86_400_000).toISOString().slice(0, 10);
     expect([worst, before].some((day) => first.includes(day))).toBe(true);
     expect(first).toContain('level');
+    const { overall, spellMs } = worstSpells(result.hindcast, 1);
+    expect(first).toContain(spellName(overall[0]!.fromMs, spellMs));
   });
 
   test('holds no number that is none, and loads nothing from elsewhere', () => {
