@@ -83,7 +83,7 @@ export function linearOfSize(attempt: Attempt, learned: Learned, size: Size): Ca
   const open = openCalibration(around.scalings.length, around.signalCount * around.horizon);
   return {
     kind: 'linear',
-    name: `${hasOwn ? 'own part and ' : ''}${order} states, ${basisCount} curves, bank of ${bankName(taught.choice.bank)}`,
+    name: `${hasOwn ? 'own part and ' : ''}${order} ${order === 1 ? 'state' : 'states'}, ${basisCount} curves, bank of ${bankName(taught.choice.bank)}`,
     float: floatModel(floatFactors(learned, size), around, open),
     rounded: floatModel(roundedFactors(learned, size).factors, around, open),
     sections: sectionsOf(attempt, learned, size),
