@@ -1,12 +1,12 @@
 /** `stillwell fit`: from a history to a judged candidate. */
 import { ADVISORY, type Site } from '@stillwell/protocol';
 import { Command } from 'commander';
-import { CANDIDATE_FILES, candidateFacts, writeCandidate } from '../candidate-files.ts';
+import { CANDIDATE_FILES, candidateFacts } from '../candidate-files.ts';
+import { type FitSiteJob, type FitSiteWatch, fitSite } from '../fit-site.ts';
 import { fitSummary } from '../fit-summary.ts';
-import { type LoadedHistory, loadHistory } from '../history/load.ts';
 import { kindOption, reason, several, share, wholeNumber } from '../option-values.ts';
-import { FIT_DEFAULTS, type FitOptions, type FitResult, fit } from '../pipeline.ts';
-import { createProgress } from '../progress.ts';
+import { FIT_DEFAULTS, type FitOptions, type FitResult } from '../pipeline.ts';
+import { createProgress, type Progress } from '../progress.ts';
 import { readSite } from '../site-file.ts';
 import { surveyNotes } from '../survey-notes.ts';
 import { timeSpan } from '../time-option.ts';
@@ -55,25 +55,7 @@ export function fitCommand(): Command {
 
 async function run(options: FitCommandOptions): Promise<void> {
   const site = readSite(options.site);
-  const loaded = await load(site, options);
-  const label = createProgress('fitting', 'steps');
-  let steps = 0;
-  const result = await fit(
-    { series: loaded.series, site, survey: loaded.survey, lattices: loaded.lattices },
-    {
-      seed: options.seed,
-      learnShare: options.learnShare,
-      calibrateShare: options.calibrateShare,
-      maxBytes: options.maxBytes,
-      coverage: FIT_DEFAULTS.coverage,
-      useAll: options.useAll,
-      kind: options.kind,
-      override: options.override ?? null,
-      progress: () => label.update(++steps, null),
-    },
-  );
-  label.end();
-  await writeCandidate(options.out, site, loaded.survey, result);
+  const { loaded, result } = await fitSite(jobOf(site, options), stepsShown());
   const notes = surveyNotes(loaded.survey);
   process.stdout.write(
     options.json
@@ -82,15 +64,38 @@ async function run(options: FitCommandOptions): Promise<void> {
   );
 }
 
-async function load(site: Site, options: FitCommandOptions): Promise<LoadedHistory> {
-  const span = timeSpan(options, site.timeZone);
-  const progress = createProgress('reading');
-  try {
-    const judgedShare = 1 - options.learnShare - options.calibrateShare;
-    return await loadHistory(options.history, site, { zone: options.timeZone ?? null, ...span, progress }, judgedShare);
-  } finally {
-    progress.end();
-  }
+function jobOf(site: Site, options: FitCommandOptions): FitSiteJob {
+  return {
+    site,
+    history: options.history,
+    out: options.out,
+    zone: options.timeZone ?? null,
+    span: timeSpan(options, site.timeZone),
+    options: {
+      seed: options.seed,
+      learnShare: options.learnShare,
+      calibrateShare: options.calibrateShare,
+      maxBytes: options.maxBytes,
+      coverage: FIT_DEFAULTS.coverage,
+      useAll: options.useAll,
+      kind: options.kind,
+      override: options.override ?? null,
+    },
+  };
+}
+
+/** Progress lines for a terminal: rows while reading, steps while fitting. */
+function stepsShown(): FitSiteWatch {
+  let steps = 0;
+  let fitting: Progress | null = null;
+  return {
+    reading: createProgress('reading'),
+    step: () => {
+      fitting ??= createProgress('fitting', 'steps');
+      fitting.update(++steps, null);
+    },
+    end: () => fitting?.end(),
+  };
 }
 
 function text(folder: string, result: FitResult, notes: readonly string[]): string {
