@@ -1,6 +1,7 @@
 /** What fit and refit leave in a folder, and what they say of it to a program. */
 import { join } from 'node:path';
 import { ADVISORY, type Site } from '@stillwell/protocol';
+import type { NewFile } from '@stillwell/runtime/files';
 import type { Survey } from './history/survey.ts';
 import { hindcastJson } from './judge/hindcast-json.ts';
 import { planWorthJson } from './judge/plan-worth.ts';
@@ -10,22 +11,32 @@ import type { FitResult } from './pipeline.ts';
 /** Names of the files, for help texts and last lines. */
 export const CANDIDATE_FILES = 'candidate.swc, report.html, hindcast.json, survey.json';
 
-/**
- * Writes candidate, report, hindcast and survey. Everything is made before anything is written.
- *
- * throws  TrainError 'file' with the system's reason
- */
-export async function writeCandidate(folder: string, site: Site, survey: Survey, result: FitResult): Promise<void> {
+/** Candidate, report, hindcast and survey as files of a folder, made and not yet written. */
+export async function candidateFiles(
+  folder: string,
+  site: Site,
+  survey: Survey,
+  result: FitResult,
+): Promise<readonly NewFile[]> {
   // Plots take half a second to load, which commands without a report need not wait for.
   const { fitReport } = await import('./report/page.ts');
   const hindcast = `${JSON.stringify({ ...hindcastJson(result.hindcast), ...planWorthJson(result.planWorth) }, null, 2)}\n`;
   const report = fitReport({ site, survey, result });
-  writeOutputs([
+  return [
     { path: join(folder, 'survey.json'), bytes: `${JSON.stringify(survey, null, 2)}\n` },
     { path: join(folder, 'hindcast.json'), bytes: hindcast },
     { path: join(folder, 'report.html'), bytes: report },
     { path: join(folder, 'candidate.swc'), bytes: result.document },
-  ]);
+  ];
+}
+
+/**
+ * Writes them, all or none.
+ *
+ * throws  TrainError 'file' with the system's reason
+ */
+export async function writeCandidate(folder: string, site: Site, survey: Survey, result: FitResult): Promise<void> {
+  writeOutputs(await candidateFiles(folder, site, survey, result));
 }
 
 /** The result as plain JSON. */

@@ -1,9 +1,11 @@
 /**
- * One site from its files to its folder: read, learn, judge, write. What `stillwell fit` does for one site, and each worker
- * of a fleet for each of its own.
+ * One site from its history to the files of its folder: read, learn, judge. What `stillwell fit` does for one site, and a
+ * worker of a fleet for each of its own. Writing is left to the caller: of a fleet, only the main thread writes, so that no
+ * worker can be stopped halfway through it.
  */
 import type { Site } from '@stillwell/protocol';
-import { writeCandidate } from './candidate-files.ts';
+import type { NewFile } from '@stillwell/runtime/files';
+import { candidateFiles } from './candidate-files.ts';
 import type { FitOptions } from './fit-options.ts';
 import { type LoadedHistory, loadHistory } from './history/load.ts';
 import { type FitResult, fit } from './pipeline.ts';
@@ -35,12 +37,14 @@ export interface FitSiteWatch {
 export interface FittedSite {
   readonly loaded: LoadedHistory;
   readonly result: FitResult;
+  /** All that is to be written, made whole; for writeOutputs. */
+  readonly files: readonly NewFile[];
 }
 
 /**
- * Fits one site and writes its folder.
+ * Fits one site; nothing is written.
  *
- * throws  TrainError as loadHistory, fit and writeCandidate do; nothing is written then
+ * throws  TrainError as loadHistory and fit do
  */
 export async function fitSite(job: FitSiteJob, watch: FitSiteWatch): Promise<FittedSite> {
   const { site, options } = job;
@@ -50,8 +54,7 @@ export async function fitSite(job: FitSiteJob, watch: FitSiteWatch): Promise<Fit
     { series, site, survey, lattices },
     { ...options, progress: (name) => watch.step(name) },
   ).finally(() => watch.end());
-  await writeCandidate(job.out, site, survey, result);
-  return { loaded, result };
+  return { loaded, result, files: await candidateFiles(job.out, site, survey, result) };
 }
 
 async function load({ site, history, zone, span, options }: FitSiteJob, progress: Progress): Promise<LoadedHistory> {

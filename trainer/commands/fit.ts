@@ -5,6 +5,7 @@ import { CANDIDATE_FILES, candidateFacts } from '../candidate-files.ts';
 import { type FitSiteJob, type FitSiteWatch, fitSite } from '../fit-site.ts';
 import { fitSummary } from '../fit-summary.ts';
 import { kindOption, reason, several, share, wholeNumber } from '../option-values.ts';
+import { writeOutputs } from '../output-file.ts';
 import { FIT_DEFAULTS, type FitOptions, type FitResult } from '../pipeline.ts';
 import { createProgress, type Progress } from '../progress.ts';
 import { readSite } from '../site-file.ts';
@@ -55,7 +56,8 @@ export function fitCommand(): Command {
 
 async function run(options: FitCommandOptions): Promise<void> {
   const site = readSite(options.site);
-  const { loaded, result } = await fitSite(jobOf(site, options), stepsShown());
+  const { loaded, result, files } = await fitSite(jobOf(site, options), stepsShown());
+  writeOutputs(files);
   const notes = surveyNotes(loaded.survey);
   process.stdout.write(
     options.json
