@@ -4,6 +4,7 @@
 import type { Site } from '@stillwell/protocol';
 import type { Model } from '@stillwell/runtime/filter';
 import type { Series } from './history/series.ts';
+import type { Earlier } from './identify/earlier.ts';
 
 /** Options of a fit. */
 export interface FitOptions {
@@ -48,4 +49,6 @@ export interface FitInput {
   readonly lattices: readonly { readonly step: number; readonly offset: number }[];
   /** Document the new one is refitted from; its digest goes into the provenance. */
   readonly previous?: Uint8Array | null;
+  /** What is known of the time before the series; the linear kind learns from it as well. */
+  readonly earlier?: Earlier | null;
 }

@@ -9,6 +9,7 @@ import { TrainError } from './errors.ts';
 import type { FitInput, FitOptions } from './fit-options.ts';
 import type { Series } from './history/series.ts';
 import { bankName, featureCount } from './identify/bank.ts';
+import type { Earlier } from './identify/earlier.ts';
 import { type Prepared, prepareHistory, scalingsForAll } from './identify/prepare.ts';
 import { responseRoom } from './identify/response.ts';
 import { type Taught, teach } from './identify/teach.ts';
@@ -59,6 +60,8 @@ export interface FitResult {
   /** The model as the gateway will compute it, read back from the document. */
   readonly model: Model;
   readonly learn: TickSpan;
+  /** Time before it that was learned from as well, and the ticks taken in there; null: none. */
+  readonly earlier: (TickSpan & { readonly ticks: number }) | null;
   readonly calibrate: TickSpan;
   readonly judged: TickSpan;
   /** The rounded model on the judged part. */
@@ -98,7 +101,7 @@ export async function fit(input: FitInput, options: FitOptions): Promise<FitResu
   const clock = startClock(options.progress);
   const split = splitHistory(input.series, input.site, options);
   clock.lap('cleaning the history');
-  const prepared = prepareHistory(input.series, input.site, input.lattices, split);
+  const prepared = prepareHistory(input.series, input.site, input.lattices, split, input.earlier ?? null);
   clock.lap('learning');
   const taught = teach(prepared);
   clock.lap('choosing the kind and size, and calibrating');
@@ -132,6 +135,7 @@ export async function fit(input: FitInput, options: FitOptions): Promise<FitResu
     bundle,
     model: modelFromBundle(bundle),
     ...split,
+    earlier: earlierSpan(input.earlier ?? null),
     hindcast: cast,
     audit,
     calibration: small.parts.calibration,
@@ -180,7 +184,7 @@ function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Pr
     },
     judge: placeholderJudge(names, verdictSteps(around.horizon), MOST_RIVALS, options.override),
     learnedToTick: split.learn.toTick,
-    settled: settledOf(split, settled),
+    settled: settledOf(split, input.earlier ?? null, settled),
   });
   const planned = plannedInputs(input.site);
   const room = responseRoom(around.signalCount, planned.length, around.horizon, featureCount(around.bank));
@@ -232,9 +236,23 @@ function learnFromAll(series: Series, prepared: Prepared, { choice, parts, plans
 }
 
 /** Goes into the provenance: what `hindcast` needs to know of the split, and what was chosen. */
-function settledOf(split: Split, settled: Readonly<Record<string, unknown>>): Readonly<Record<string, unknown>> {
+function settledOf(
+  split: Split,
+  earlier: Earlier | null,
+  settled: Readonly<Record<string, unknown>>,
+): Readonly<Record<string, unknown>> {
   const span = ({ fromTick, toTick }: TickSpan): readonly number[] => [fromTick, toTick];
-  return { learn: span(split.learn), calibrate: span(split.calibrate), judged: span(split.judged), ...settled };
+  const before =
+    earlier === null
+      ? {}
+      : { earlier: span(earlier), earlierDigest: Buffer.from(earlier.digest.subarray(0, 8)).toString('hex') };
+  return {
+    ...before,
+    learn: span(split.learn),
+    calibrate: span(split.calibrate),
+    judged: span(split.judged),
+    ...settled,
+  };
 }
 
 function chosenOf({ candidate, tried }: KindChoice, { around }: Prepared, { choice }: Taught): Chosen {
@@ -250,6 +268,10 @@ function chosenOf({ candidate, tried }: KindChoice, { around }: Prepared, { choi
     periodTicks: around.season.periodTicks,
     folds: choice.folds,
   };
+}
+
+function earlierSpan(earlier: Earlier | null): FitResult['earlier'] {
+  return earlier && { fromTick: earlier.fromTick, toTick: earlier.toTick, ticks: earlier.ticks };
 }
 
 function indices(span: TickSpan, series: Series): TickSpan {

@@ -6,6 +6,7 @@
 import { lastValueErrors, type OwnChoice, type OwnTrial } from './choose-own.ts';
 import { type FoldErrors, gainsSurely, leastIndex, powerMean, sumOver } from './fold-errors.ts';
 import { weightsOf } from './folds.ts';
+import type { Moments } from './moments.ts';
 import {
   type Cell,
   type CrossSystem,
@@ -35,7 +36,12 @@ const MOST_PRODUCTS = 4e8;
 
 /** A fold ready for trying penalties. */
 interface Ready {
-  readonly judge: OwnTrial['folds'][number]['judge'];
+  readonly judge: Moments;
+  readonly lesson: Lesson;
+}
+
+/** What a fold learned: its own stage's map, what that left, and the equations of the cross stage. */
+interface Lesson {
   readonly own: Float64Array;
   readonly left: Float64Array;
   readonly system: CrossSystem;
@@ -72,12 +78,15 @@ export function chooseCross(
     from: groups.indexOf(g) + 1,
     to: groups.lastIndexOf(g) + 1,
   }));
-  const owns = trial.folds.map(({ learn }) => ownMap(learn, layout, unit, own.cells));
-  const lefts = trial.folds.map(({ learn }, f) => leftByOwn(learn, layout, owns[f]));
-  const ready = (kept: readonly number[]): Ready[] =>
-    trial.folds.map(({ learn, judge }, f) => {
-      return { judge, own: owns[f], left: lefts[f], system: crossSystem(learn, layout, kept) };
-    });
+  // Folds that learn from the same share all but what judges them.
+  const lessons = [...new Set(trial.folds.map(({ learn }) => learn))].map((learn) => {
+    const map = ownMap(learn, layout, unit, own.cells);
+    return { learn, own: map, left: leftByOwn(learn, layout, map) };
+  });
+  const ready = (kept: readonly number[]): Ready[] => {
+    const known = lessons.map((one) => ({ ...one, system: crossSystem(one.learn, layout, kept) }));
+    return trial.folds.map(({ learn, judge }) => ({ judge, lesson: known.find((one) => one.learn === learn)! }));
+  };
   let best = tryAll(trial, ready(variants[0]), variants[0]);
   for (const kept of variants.slice(1)) {
     if (layout.channelCount * kept.length > MOST_TRIED) continue;
@@ -149,11 +158,19 @@ function tryThese(
   kept: readonly number[],
   penalties: readonly number[],
 ): Tried {
-  return { kept, penalties, errors: penalties.map((penalty) => ready.map((fold) => foldErrors(trial, fold, penalty))) };
+  const errors = penalties.map((penalty) => {
+    const maps = new Map<Lesson, Float64Array>();
+    return ready.map(({ judge, lesson }) => {
+      const map = maps.get(lesson) ?? bothStages(trial, lesson, penalty);
+      maps.set(lesson, map);
+      return mapError(judge, trial.layout, map);
+    });
+  });
+  return { kept, penalties, errors };
 }
 
-/** (ny · steps) errors of both stages on a fold's judge. */
-function foldErrors({ layout }: OwnTrial, { judge, own, left, system }: Ready, penalty: number): Float64Array {
+/** (p × ny · steps) map of both stages. */
+function bothStages({ layout }: OwnTrial, { own, left, system }: Lesson, penalty: number): Float64Array {
   const width = layout.signalCount * layout.steps;
   const { chosen } = system;
   const right = new Float64Array(chosen.length * width);
@@ -165,7 +182,7 @@ function foldErrors({ layout }: OwnTrial, { judge, own, left, system }: Ready, p
   chosen.forEach((f, a) => {
     for (let k = 0; k < width; k++) map[f * width + k] += right[a * width + k];
   });
-  return mapError(judge, layout, map);
+  return map;
 }
 
 /** (groups) index of the penalty that serves all signals. */

@@ -4,7 +4,7 @@
  * own, since a choice for each alone follows the noise of the folds. A signal that does not surely gain on its last value
  * keeps that.
  */
-import { type Fold, type FoldErrors, gainsSurely, leastIndex, powerMean, sumOver } from './fold-errors.ts';
+import { type FoldErrors, gainsSurely, leastIndex, powerMean, sumOver } from './fold-errors.ts';
 import type { Evidence } from './folds.ts';
 import type { Moments } from './moments.ts';
 import { type Cell, type Layout, ownFeatures, ridgeOwn } from './ridge.ts';
@@ -59,12 +59,17 @@ export function tryOwn(trial: OwnTrial, kept: readonly number[], among: readonly
   const isKept = new Set(kept);
   const signals = Array.from({ length: layout.signalCount }, (_, i) => i);
   const chosenOf = signals.map((i) => ownFeatures(layout, i).filter((f) => isKept.has(f % layout.featureCount)));
-  const attempt = (penalty: number): FoldErrors =>
-    folds.map((fold) => {
+  const attempt = (penalty: number): FoldErrors => {
+    // Folds that learn from the same have the same maps.
+    const maps = new Map<Moments, readonly Float64Array[]>();
+    return folds.map(({ learn, judge }) => {
+      const known = maps.get(learn) ?? signals.map((i) => ridgeOwn(learn, layout, i, chosenOf[i], penalty));
+      maps.set(learn, known);
       const out = new Float64Array(layout.signalCount * layout.steps);
-      for (const i of signals) out.set(ownError(fold, layout, i, chosenOf[i], penalty), i * layout.steps);
+      for (const i of signals) out.set(ownError(judge, layout, i, chosenOf[i], known[i]), i * layout.steps);
       return out;
     });
+  };
   const penalties = [...(among ?? PENALTIES)];
   const errors = penalties.map(attempt);
   let common = commonOf(trial, errors);
@@ -163,13 +168,12 @@ export function lastValueErrors(folds: readonly { readonly judge: Moments }[], l
   );
 }
 
-/** (steps) mean squared errors of one signal's own map on the fold's judge. */
-function ownError(fold: Fold, layout: Layout, signal: number, chosen: Int32Array, penalty: number): Float64Array {
-  const map = ridgeOwn(fold.learn, layout, signal, chosen, penalty);
+/** (steps) mean squared errors of one signal's own map on what judges it. */
+function ownError(judge: Moments, layout: Layout, signal: number, chosen: Int32Array, map: Float64Array): Float64Array {
   const p = layout.channelCount * layout.featureCount;
   const width = layout.signalCount * layout.steps;
   const { steps } = layout;
-  const { features, future, energy, origins } = fold.judge;
+  const { features, future, energy, origins } = judge;
   const out = energy.slice(signal * steps, (signal + 1) * steps);
   const pushed = new Float64Array(steps);
   for (let a = 0; a < chosen.length; a++) {

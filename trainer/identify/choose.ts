@@ -8,6 +8,7 @@ import { chooseCross } from './choose-cross.ts';
 import { type OwnChoice, type OwnErrors, type OwnTrial, settleOwn, tryOwn } from './choose-own.ts';
 import { gainsSurely, powerMean, sumOver } from './fold-errors.ts';
 import { makeEvidence } from './folds.ts';
+import { pickMoments } from './moment-sets.ts';
 import type { Moments } from './moments.ts';
 import type { Cell, Layout, TwoStagePlan } from './ridge.ts';
 import { stepGroups, type trialSteps } from './step-groups.ts';
@@ -44,7 +45,8 @@ const JOINT_CHANCE = 0.05;
 /**
  * Chooses.
  *
- * shapes  groups in time order, of the widest bank's moments at the trial steps; layout of all steps
+ * shapes  groups in time order, of the widest bank's moments at the trial steps; layout of all steps; before those of the
+ *         time before all groups, at all steps, or null
  * units   standardised
  * throws  TrainError 'fit' from the solves
  * source  rolling origin: Tashman (2000)
@@ -55,9 +57,11 @@ export function choose(
   bank: Bank,
   layout: Layout,
   trials: ReturnType<typeof trialSteps>,
+  before: Moments | null = null,
 ): Choice {
+  const all = Array.from({ length: layout.featureCount }, (_, f) => f);
   const trial: OwnTrial = {
-    ...makeEvidence(groups),
+    ...makeEvidence(groups, before && pickMoments(before, layout, all, trials.steps)),
     layout: { ...layout, steps: trials.steps.length },
     groups: trials.groups,
   };

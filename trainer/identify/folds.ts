@@ -25,17 +25,23 @@ const SHORT_POWER = 0.5;
 const TIES = { short: 0.01, long: 0.001 } as const;
 /** Folds by rolling origin learn from at least this many groups where there are enough. */
 const FIRST_FOLD = 3;
+/** Where the time before the groups is this many times theirs, what each adds to it changes nothing. */
+const MUCH_BEFORE = 4;
 
 /**
  * The folds of some groups of origins.
  *
- * shapes  groups in time order, alike, at least two
+ * shapes  groups in time order, alike, at least two; before: what was learned ahead of them all, alike, or null
  * units   sums over origins
  * throws  nothing
  * source  rolling origin: Tashman (2000); blocks in turn: Bergmeir & Benítez, Information Sciences 191 (2012)
  * cost    O(groups²) additions of moments
  */
-export function makeEvidence(groups: readonly Moments[]): Evidence {
+export function makeEvidence(groups: readonly Moments[], before: Moments | null = null): Evidence {
+  if (before !== null) {
+    const folds = onwardFrom(before, groups);
+    return { folds, weights: weightsOf(folds, 0), tie: TIES.long };
+  }
   if (!isShort(groups) || groups.length < 3) return onwardEvidence(groups, groups);
   const folds = eachInTurn(groups);
   // Each judges what nearly the same groups taught: Nadeau & Bengio, Machine Learning 52 (2003), section 3.
@@ -79,6 +85,22 @@ export function weightsOf(folds: readonly Fold[], power: number): FoldWeights {
 
 function eachInTurn(groups: readonly Moments[]): Fold[] {
   return groups.map((judge, g) => ({ learn: aboutMeans(addMoments(groups.filter((_, k) => k !== g))), judge }));
+}
+
+/** Every group judges what the time before it taught; one and the same where that is long. */
+function onwardFrom(before: Moments, groups: readonly Moments[]): Fold[] {
+  const own = groups.reduce((sum, { origins }) => sum + origins, 0);
+  const isLong = before.origins >= MUCH_BEFORE * own;
+  let sum = before;
+  let learn = aboutMeans(before);
+  return groups.map((judge) => {
+    const fold = { learn, judge };
+    if (!isLong) {
+      sum = addMoments([sum, judge]);
+      learn = aboutMeans(sum);
+    }
+    return fold;
+  });
 }
 
 function onward(groups: readonly Moments[], judged: readonly Moments[]): Fold[] {

@@ -10,10 +10,11 @@ import { partition, usableBlocks } from './blocks.ts';
 import { findDirections, stateMoments } from './bottleneck.ts';
 import { type Choice, choose } from './choose.ts';
 import { isWithinReach } from './choose-cross.ts';
+import type { EarlierMoments } from './earlier.ts';
 import type { Filled } from './fill.ts';
 import { gatherCut, gatherSum } from './gather.ts';
 import { findCurves, fullReadout } from './horizon-basis.ts';
-import { aboutMeans, pickMoments } from './moment-sets.ts';
+import { aboutMeans, addInto, pickMoments } from './moment-sets.ts';
 import type { MomentInput, Moments } from './moments.ts';
 import { splitOwn } from './own-part.ts';
 import { type Layout, twoStageMap } from './ridge.ts';
@@ -32,6 +33,8 @@ export interface LearnInput {
   readonly calibrateTicks: number;
   /** Taken away from the history first; null: nothing. */
   readonly round: Round | null;
+  /** Of the time before the history, less the same rounds; null: nothing is known of it. */
+  readonly earlier: EarlierMoments | null;
 }
 
 /** What learning gave. */
@@ -65,19 +68,22 @@ const SILENT = 1e-6;
 export function learn(given: LearnInput): LearnOutput {
   const input = lessRound(given);
   const { filled, horizon, learnTicks, calibrateTicks } = input;
-  const widest = designBank({ ...input, channelCount: filled.values.length });
+  const knownTicks = learnTicks + (input.earlier?.ticks ?? 0);
+  const widest = designBank({ ...input, learnTicks: knownTicks, channelCount: filled.values.length });
   const settle = (input.round?.ticks ?? 0) + Math.min(settlingTicks(widest), Math.floor(learnTicks / 8));
   const cut = partition(learnTicks, calibrateTicks, settle, horizon, filled.inLongGap);
   const layout = layoutOf(input, widest);
   requireRoom(layout);
   const trials = trialSteps(horizon);
   const gathered = gatherCut(momentInput(input, widest), layout, cut, trials.steps);
-  const choice = choose(gathered.groups, widest, layout, trials);
+  const before = input.earlier?.of(widest) ?? null;
+  const choice = choose(gathered.groups, widest, layout, trials, before);
   const steps = Array.from({ length: horizon }, (_, k) => k + 1);
   const pick = (moments: Moments): Moments => pickMoments(moments, layout, choice.kept, steps);
+  const learning = before === null ? gathered.learning : addInto(before, gathered.learning);
   return {
     choice,
-    learned: mapAndDirections(pick(gathered.learning), { ...layout, featureCount: choice.kept.length }, choice),
+    learned: mapAndDirections(pick(learning), { ...layout, featureCount: choice.kept.length }, choice),
     calibration: pick(gathered.calibration),
     usesLongGaps: cut.usesLongGaps,
     notes: widthNotes(input, layout, trials.steps.length),
@@ -124,7 +130,9 @@ export function learnAgain(given: LearnInput, choice: Choice, ticks: number): Le
   const layout = layoutOf(input, choice.bank);
   const settle = (input.round?.ticks ?? 0) + Math.min(settlingTicks(choice.bank), Math.floor(ticks / 8));
   const blocks = usableBlocks(settle, ticks, input.horizon, input.filled.inLongGap);
-  return mapAndDirections(gatherSum(momentInput(input, choice.bank), blocks), layout, choice);
+  const own = gatherSum(momentInput(input, choice.bank), blocks);
+  const before = input.earlier?.of(choice.bank) ?? null;
+  return mapAndDirections(before === null ? own : addInto(before, own), layout, choice);
 }
 
 /** What learning sees: the history less its rounds. */

@@ -9,6 +9,7 @@ import type { Series } from '../history/series.ts';
 import type { Surroundings } from '../quantise/float-model.ts';
 import type { Split } from '../requirements.ts';
 import { learnAgreement } from './agreement.ts';
+import type { Earlier } from './earlier.ts';
 import { type Excursion, findExcursions, withoutExcursions } from './excursions.ts';
 import { type Filled, fillHistory, type PartEnds } from './fill.ts';
 import type { LearnInput } from './learn.ts';
@@ -29,6 +30,8 @@ export interface Prepared {
   readonly otherPeriods: readonly number[];
   readonly learnTicks: number;
   readonly calibrateTicks: number;
+  /** What is known of the time before the history; null: nothing. */
+  readonly earlier: Earlier | null;
   readonly warnings: readonly string[];
 }
 
@@ -49,6 +52,7 @@ export function prepareHistory(
   site: Site,
   lattices: readonly { readonly step: number; readonly offset: number }[],
   split: Split,
+  earlier: Earlier | null = null,
 ): Prepared {
   const series = withoutExcluded(seen);
   const learnTicks = split.learn.toTick - split.learn.fromTick;
@@ -82,6 +86,7 @@ export function prepareHistory(
     otherPeriods: others,
     learnTicks,
     calibrateTicks,
+    earlier,
     warnings: [
       ...excludedNotes(seen),
       ...stuckWarnings(series, withoutStuck(series, stuck), ends),
@@ -126,7 +131,8 @@ function withinRange(scaling: Scaling, { range, aggregate }: Signal): Scaling {
 
 /** The part of it that learning takes. */
 export function learnInput(prepared: Prepared, round: Round | null): LearnInput {
-  const { around, filled, otherPeriods, learnTicks, calibrateTicks } = prepared;
+  const { around, filled, otherPeriods, learnTicks, calibrateTicks, earlier } = prepared;
+  const { horizon, scalings, signalCount } = around;
   return {
     filled,
     signalCount: around.signalCount,
@@ -136,6 +142,10 @@ export function learnInput(prepared: Prepared, round: Round | null): LearnInput 
     learnTicks,
     calibrateTicks,
     round,
+    earlier: earlier && {
+      ticks: earlier.ticks,
+      of: (bank) => earlier.moments({ bank, horizon, scalings, signalCount, round }),
+    },
   };
 }
 

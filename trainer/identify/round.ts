@@ -39,14 +39,14 @@ const MOST_SIGNALS = 32;
 /**
  * The round that pays, or null.
  *
- * shapes  weight (ny)
+ * shapes  weight (ny); longest the longest that may be tried
  * units   ticks
  * throws  TrainError 'fit' from the solves
  * source  seasonal differencing chosen by rolling origin: Tashman (2000)
  * cost    ny × rounds × weights gatherings of one signal's moments, and their own solves
  */
-export function chooseRound(input: LearnInput, tickMs: number): Round | null {
-  const rounds = roundsWorthTrying(input, tickMs);
+export function chooseRound(input: LearnInput, tickMs: number, longest = Number.POSITIVE_INFINITY): Round | null {
+  const rounds = roundsWorthTrying(input, tickMs).filter((ticks) => ticks <= longest);
   if (rounds.length === 0 || input.signalCount > MOST_SIGNALS) return null;
   const gaining = rounds
     .toSorted((a, b) => a - b)

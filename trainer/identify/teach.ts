@@ -44,7 +44,7 @@ const PASS_COVERAGE = 0.9;
  * cost    one or two passes of learning, and one replay between them
  */
 export function teach(prepared: Prepared): Taught {
-  const round = chooseRound(learnInput(prepared, null), prepared.around.tickMs);
+  const round = chooseRound(learnInput(prepared, null), prepared.around.tickMs, prepared.earlier?.longestRound);
   const first = learn(learnInput(prepared, round));
   const gaps = 'Long gaps cover more than half of the history; they had to be bridged and learned from.';
   const warnings = [...(first.usesLongGaps ? [gaps] : []), ...first.notes];

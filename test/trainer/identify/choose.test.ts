@@ -33,6 +33,7 @@ function learned(channels: readonly Float64Array[]): LearnOutput {
     learnTicks: ends.learnTicks,
     calibrateTicks: ends.calibrateEnd - ends.learnTicks,
     round: null,
+    earlier: null,
   });
 }
 

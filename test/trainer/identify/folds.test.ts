@@ -38,6 +38,19 @@ describe('makeEvidence', () => {
     expect([weights.power, weights.doubt, tie]).toEqual([0, 1, 0.001]);
   });
 
+  it('lets every group judge what the time before it taught', () => {
+    const few = makeEvidence(groupsOf(2, 100), group(3, 500));
+    expect(few.folds.map(({ learn, judge }) => [learn.features[0], judge.features[0]])).toEqual([
+      [1000, 1],
+      [1001, 10],
+    ]);
+    expect([few.weights.power, few.weights.doubt, few.tie, few.onward]).toEqual([0, 1, 0.001, undefined]);
+    // Four times as long: what a group adds is let be, so that one solve serves all folds.
+    const many = makeEvidence(groupsOf(2, 100), group(3, 800));
+    expect(many.folds[1]!.learn).toBe(many.folds[0]!.learn);
+    expect(many.folds.map(({ learn }) => learn.features[0])).toEqual([1000, 1000]);
+  });
+
   it('does not turn round two groups', () => {
     const { folds } = makeEvidence(groupsOf(2, 30));
     expect(folds.map(({ learn, judge }) => [learn.features[0], judge.features[0]])).toEqual([[1, 10]]);

@@ -84,6 +84,7 @@ describe('learn, of many signals', () => {
     learnTicks: Math.round(0.6 * length),
     calibrateTicks: Math.round(0.2 * length),
     round: null,
+    earlier: null,
   });
 
   it('says what they go without', () => {

@@ -73,9 +73,11 @@ function kalmanError(y: readonly [Float64Array, Float64Array], from: number, to:
   return sum / (to - from) / (2 * H);
 }
 
-/** Excess of the learned map over the exact filter, as a share. */
-function excess(ticks: number, seed: number): number {
-  const values = simulate(ticks + TEST_TICKS, seed);
+/** Excess of the learned map over the exact filter, as a share; `before` ticks ahead of the history are known by moments alone. */
+function excess(ticks: number, seed: number, before = 0): number {
+  const whole = simulate(before + ticks + TEST_TICKS, seed);
+  const values = whole.map((y) => y.subarray(before)) as [Float64Array, Float64Array];
+  const older = whole.map((y) => y.subarray(0, before));
   const none = new Uint8Array(ticks);
   const learnTicks = Math.round(0.75 * ticks);
   const isRead = values.map(() => new Uint8Array(ticks).fill(1));
@@ -89,6 +91,16 @@ function excess(ticks: number, seed: number): number {
     learnTicks,
     calibrateTicks: ticks - learnTicks,
     round: null,
+    earlier:
+      before === 0
+        ? null
+        : {
+            ticks: before,
+            of: (bank) =>
+              gatherMoments({ values: older, signalCount: 2, bank, horizon: H }, [
+                { fromIndex: 1, toIndex: before - H },
+              ])[0]!,
+          },
   });
   const [moments] = gatherMoments({ values, signalCount: 2, bank: choice.bank, horizon: H }, [
     { fromIndex: ticks, toIndex: ticks + TEST_TICKS - H },
@@ -112,5 +124,16 @@ describe('a linear-Gaussian plant', () => {
     expect(middle).toBeLessThan(short);
     // Nothing beats the exact filter but chance: two standard errors of 20,000 origins.
     expect(long).toBeGreaterThan(-0.005);
+  });
+
+  it('is learned as well from moments of the time before as from a history that holds it', () => {
+    const seeds = [3, 5, 8];
+    const mean = (ticks: number, before: number): number =>
+      seeds.reduce((sum, seed) => sum + excess(ticks, seed, before), 0) / seeds.length;
+    const alone = mean(12_800, 0);
+    const both = mean(12_800, 51_200);
+    const whole = mean(64_000, 0);
+    expect(both).toBeLessThan(alone);
+    expect(both - whole).toBeLessThan(0.001);
   });
 });

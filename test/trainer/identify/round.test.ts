@@ -13,7 +13,7 @@ function chosen(signal: (t: number) => number, periodTicks = 24) {
   const filled = { values, isRead: [new Uint8Array(TICKS).fill(1)], inLongGap: new Uint8Array(TICKS) };
   const spans = { learnTicks: LEARN, calibrateTicks: TICKS - LEARN };
   return chooseRound(
-    { filled, signalCount: 1, horizon: 12, periodTicks, otherPeriods: [], ...spans, round: null },
+    { filled, signalCount: 1, horizon: 12, periodTicks, otherPeriods: [], ...spans, round: null, earlier: null },
     HOUR,
   );
 }
