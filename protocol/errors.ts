@@ -11,6 +11,7 @@ export type ProtocolErrorCode =
   | 'schema'
   | 'format'
   | 'site-file'
+  | 'fleet-file'
   | 'payload'
   | 'plan'
   | 'topic'

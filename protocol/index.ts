@@ -15,6 +15,7 @@ export {
   type SealNumbers,
 } from './envelope.ts';
 export * from './errors.ts';
+export { type FleetEntry, type FleetEntryOptions, parseFleetFile } from './fleet-file.ts';
 export * from './forecast.ts';
 export * from './forecasts.ts';
 export { deepFreeze } from './freeze.ts';

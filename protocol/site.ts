@@ -1,15 +1,13 @@
 /**
  * The site file: one YAML document a site, read by the trainer and by the gateway alike.
  */
-import { type Document, isAlias, isMap, isNode, isScalar, isSeq, LineCounter, parseDocument } from 'yaml';
-import { ProtocolError } from './errors.ts';
 import { deepFreeze } from './freeze.ts';
-import { type Fault, formatFault, listFaults } from './issue.ts';
+import { listFaults } from './issue.ts';
 import { MAX_SITE_FILE_BYTES } from './limits.ts';
-import { formatPath } from './path.ts';
 import { crossFaults } from './site-check.ts';
 import { type Exclusion, excludeFaults, toExclusion } from './site-exclude.ts';
 import { type SiteFile, siteFileKeys, siteFileSchema } from './site-schema.ts';
+import { readYamlFile, type YamlKind } from './yaml-file.ts';
 
 /** How a tick makes one value of the readings that fall into it. */
 export type Aggregate = 'last' | 'mean' | 'min' | 'max' | 'sum' | 'increment';
@@ -130,64 +128,11 @@ const toSite = (file: SiteFile): Site => ({
   exclude: (file.exclude ?? []).map(toExclusion),
 });
 
-const fileFault = (fileName: string, lines: LineCounter, offset: number, text: string, path = ''): ProtocolError => {
-  const { line, col } = lines.linePos(offset);
-  return new ProtocolError('site-file', `${fileName}:${line}:${col}: ${text}`, {
-    details: { fileName, line, col, path },
-  });
-};
-
-/** What the YAML reader's own codes mean to a person; its message where there is no better one. */
-const yamlText = (error: { code: string; message: string }): string => {
-  if (error.code === 'DUPLICATE_KEY') return 'this key appears twice in the same map; keep one';
-  if (error.code === 'TAB_AS_INDENT') return 'expected spaces for indentation, got a tab';
-  if (error.code === 'MULTIPLE_DOCS') return 'expected one YAML document, got several; remove the "---" line';
-  if (error.message.includes('call stack')) return 'expected a few levels of nesting, got too many to read';
-  return `not valid YAML: ${error.message}`;
-};
-
-const readYaml = (text: string, fileName: string, lines: LineCounter): Document.Parsed => {
-  const document = parseDocument(text, { lineCounter: lines, prettyErrors: false, schema: 'core', version: '1.2' });
-  const problem = document.errors[0] ?? document.warnings[0];
-  if (problem !== undefined) throw fileFault(fileName, lines, problem.pos[0], yamlText(problem));
-  if (document.contents === null) {
-    throw fileFault(
-      fileName,
-      lines,
-      0,
-      'expected a site file with the keys site, time_zone, tick, horizon and signals, got an empty file',
-    );
-  }
-  return document;
-};
-
-const toPlain = (document: Document.Parsed, fileName: string, lines: LineCounter): unknown => {
-  try {
-    return document.toJS();
-  } catch (error) {
-    throw fileFault(fileName, lines, 0, `not usable YAML: ${(error as Error).message}`);
-  }
-};
-
-/** Offset of the value a path names, of its key for an unknown one, or of the nearest map around a missing one. */
-const offsetOf = (document: Document.Parsed, fault: Fault): number => {
-  let node: unknown = document.contents;
-  let offset = document.contents?.range[0] ?? 0;
-  for (const [depth, step] of fault.path.entries()) {
-    if (isAlias(node)) node = node.resolve(document);
-    if (isMap(node)) {
-      const pair = node.items.find((item) => isScalar(item.key) && String(item.key.value) === String(step));
-      if (pair === undefined || !isScalar(pair.key)) return offset;
-      const isKey = (fault.isUnknownKey && depth === fault.path.length - 1) || !isNode(pair.value);
-      offset = (isKey ? pair.key.range?.[0] : (pair.value as { range?: number[] }).range?.[0]) ?? offset;
-      node = pair.value;
-    } else if (isSeq(node)) {
-      node = node.items[Number(step)];
-      if (!isNode(node)) return offset;
-      offset = node.range?.[0] ?? offset;
-    } else return offset;
-  }
-  return offset;
+const SITE_FILE: YamlKind = {
+  code: 'site-file',
+  called: 'a site file',
+  keys: 'site, time_zone, tick, horizon and signals',
+  maxBytes: MAX_SITE_FILE_BYTES,
 };
 
 /**
@@ -197,35 +142,15 @@ const offsetOf = (document: Document.Parsed, fault: Fault): number => {
  * throws  ProtocolError 'site-file': "file:line:col: path: expected …, got …", with a suggestion for a mistyped key
  */
 export const parseSite = (text: string, fileName = 'site file'): Site => {
-  const lines = new LineCounter();
-  if (Buffer.byteLength(text) > MAX_SITE_FILE_BYTES) {
-    throw new ProtocolError(
-      'site-file',
-      `${fileName}: expected a site file of at most ${MAX_SITE_FILE_BYTES} bytes, got ${Buffer.byteLength(text)}; check that it is the right file`,
-      { details: { fileName } },
-    );
-  }
-  const document = readYaml(text, fileName, lines);
-  const plain = toPlain(document, fileName, lines);
-  const parsed = siteFileSchema.safeParse(plain);
-  if (!parsed.success) throw siteFault(fileName, lines, document, listFaults(parsed.error, plain, siteFileKeys));
+  const file = readYamlFile(text, fileName, SITE_FILE);
+  const parsed = siteFileSchema.safeParse(file.plain);
+  if (!parsed.success) throw file.refusal(listFaults(parsed.error, file.plain, siteFileKeys));
   const { signals, inputs, exclude } = parsed.data;
   const names = [...signals, ...(inputs ?? [])].map((entry) => entry.name);
   const misfits = excludeFaults(exclude ?? [], names);
-  if (misfits.length > 0) throw siteFault(fileName, lines, document, misfits);
+  if (misfits.length > 0) throw file.refusal(misfits);
   const site = toSite(parsed.data);
   const faults = crossFaults(site);
-  if (faults.length > 0) throw siteFault(fileName, lines, document, faults);
+  if (faults.length > 0) throw file.refusal(faults);
   return deepFreeze(site);
-};
-
-const siteFault = (
-  fileName: string,
-  lines: LineCounter,
-  document: Document.Parsed,
-  faults: readonly Fault[],
-): ProtocolError => {
-  const first = faults[0]!;
-  const more = faults.length > 1 ? ` (and ${faults.length - 1} more)` : '';
-  return fileFault(fileName, lines, offsetOf(document, first), `${formatFault(first)}${more}`, formatPath(first.path));
 };
