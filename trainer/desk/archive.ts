@@ -4,6 +4,7 @@
  */
 import { inflateRawSync } from 'node:zlib';
 import { type Bundle, latticeValue } from '@stillwell/protocol';
+import { sql } from 'kysely';
 import { TrainError } from '../errors.ts';
 import { Shelf } from './shelf.ts';
 import { openArchive, type Store, toBytes } from './store/open.ts';
@@ -39,35 +40,39 @@ export interface Archive {
 /**
  * Reads a site's archive out of a desk's data folder, also while a desk is writing to it.
  *
- * throws  TrainError 'archive' when there is no store, or nothing of the site is decoded in it
+ * sinceTick  only segments that reach beyond this tick are read, and late readings from there on: what a refit from
+ *            factors has not learned yet, at a cost that knows nothing of the archive's length
+ * throws     TrainError 'archive' when there is no store, or nothing of the site is decoded in it, or nothing since then
  */
-export async function readArchive(folder: string, site: string): Promise<Archive> {
+export async function readArchive(folder: string, site: string, sinceTick = Number.MIN_SAFE_INTEGER): Promise<Archive> {
   const store = await openArchive(folder);
   try {
-    return await readSite(store, site);
+    return await readSite(store, site, sinceTick);
   } finally {
     await store.close();
   }
 }
 
 /** As readArchive, on a store that is open. */
-export async function readSite(store: Store, site: string): Promise<Archive> {
+export async function readSite(store: Store, site: string, sinceTick = Number.MIN_SAFE_INTEGER): Promise<Archive> {
   const spans = await store.db
     .selectFrom('spans')
     .innerJoin('segments', 'segments.id', 'spans.segment')
     .select(['spans.bundle', 'spans.first_tick', 'spans.ticks', 'spans.channels', 'spans.lattice'])
     .where('spans.site', '=', site)
+    .where(sql<boolean>`spans.first_tick + spans.ticks > ${sinceTick}`)
     .orderBy('spans.first_tick')
     .orderBy('segments.gateway')
     .orderBy('segments.stream')
     .orderBy('segments.number')
     .execute();
-  if (spans.length === 0) throw await nothingOf(store, site);
+  if (spans.length === 0) throw await nothingOf(store, site, sinceTick);
   const late = await store.db
     .selectFrom('corrections')
     .innerJoin('segments', 'segments.id', 'corrections.segment')
     .select(['corrections.bundle', 'corrections.tick', 'corrections.channel', 'corrections.lattice'])
     .where('corrections.site', '=', site)
+    .where('corrections.tick', '>=', sinceTick)
     .orderBy('segments.gateway')
     .orderBy('segments.stream')
     .orderBy('segments.number')
@@ -90,7 +95,19 @@ export async function readSite(store: Store, site: string): Promise<Archive> {
   return { site, tickMs: last.tickMs, ...made, segments: kept.length, corrections, bundles: [...bundles.keys()] };
 }
 
-async function nothingOf(store: Store, site: string): Promise<TrainError> {
+async function nothingOf(store: Store, site: string, sinceTick: number): Promise<TrainError> {
+  const last = await store.db
+    .selectFrom('spans')
+    .select(({ fn }) => fn.max<number | null>(sql`first_tick + ticks`).as('end'))
+    .where('site', '=', site)
+    .executeTakeFirst();
+  if (last !== undefined && last.end !== null && last.end <= sinceTick) {
+    return new TrainError(
+      'archive',
+      `${store.folder}: no readings of site "${site}" newer than what the factors hold; the archive ends ` +
+        `${sinceTick - last.end === 0 ? 'where they do' : `${sinceTick - last.end} ticks before them`}. Collect more, then refit.`,
+    );
+  }
   const rows = await store.db.selectFrom('segments').select('site').distinct().orderBy('site').execute();
   const known = rows.map((row) => row.site).join(', ');
   return new TrainError(

@@ -2,6 +2,7 @@
 import { writeFileSync } from 'node:fs';
 import { join } from 'node:path';
 import { latticeValue } from '@stillwell/protocol';
+import { sql } from 'kysely';
 import { expect, test } from 'vitest';
 import { type Archive, readSite } from '../../../trainer/desk/archive.ts';
 import { Chain } from '../../../trainer/desk/chain.ts';
@@ -82,6 +83,35 @@ test('segments in order give the readings back exactly, through a restart and a 
   expectExact(archive, maker);
   expect(archive.corrections).toBe(2);
   expect(archive.bundles).toHaveLength(2);
+  await desk.store.close();
+});
+
+test('what is newer than a tick is read alone, late readings included, and found by the index', async () => {
+  const desk = await openDesk(testFolder());
+  const maker = madeUp();
+  await deliver(
+    desk,
+    maker.made.map((one) => one.bytes),
+  );
+  const whole = await readSite(desk.store, SITE);
+  const since = whole.ticks[70]!;
+  const part = await readSite(desk.store, SITE, since);
+  expect(part.segments).toBeLessThan(whole.segments);
+  const from = whole.ticks.indexOf(part.ticks[0]!);
+  expect(whole.ticks[from]).toBeLessThanOrEqual(since);
+  part.channels.forEach((channel, c) => {
+    const same = (values: Float64Array): number[] => Array.from(values.slice(70));
+    expect(Array.from(channel.values.slice(70 - from))).toEqual(same(whole.channels[c]!.values));
+    expect(Array.from(channel.original.slice(70 - from))).toEqual(same(whole.channels[c]!.original));
+  });
+  const end = whole.ticks.at(-1)! + 1;
+  await expect(readSite(desk.store, SITE, end)).rejects.toThrow(
+    /no readings .* newer .* the archive ends where they do/,
+  );
+  await expect(readSite(desk.store, SITE, end + 7)).rejects.toThrow(/the archive ends 7 ticks before them/);
+  const plan = await sql<{ detail: string }>`EXPLAIN QUERY PLAN SELECT * FROM spans
+    WHERE site = ${SITE} AND spans.first_tick + spans.ticks > ${since}`.execute(desk.store.db);
+  expect(plan.rows.map(({ detail }) => detail).join()).toContain('spans_end');
   await desk.store.close();
 });
 

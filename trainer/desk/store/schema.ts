@@ -119,10 +119,16 @@ export interface Tables {
 }
 
 /** Step i brings a store of version i to version i + 1; steps are only ever added. */
-export const SCHEMA_STEPS: readonly ((db: Kysely<Tables>) => Promise<void>)[] = [createFirstTables];
+export const SCHEMA_STEPS: readonly ((db: Kysely<Tables>) => Promise<void>)[] = [createFirstTables, indexWhatIsNew];
 
 async function createFirstTables(db: Kysely<Tables>): Promise<void> {
   for (const statement of FIRST_TABLES) await sql.raw(statement).execute(db);
+}
+
+/** What ends after a tick is found without a look at what ends before it. */
+async function indexWhatIsNew(db: Kysely<Tables>): Promise<void> {
+  await sql.raw('CREATE INDEX spans_end ON spans (site, (first_tick + ticks))').execute(db);
+  await sql.raw('CREATE INDEX corrections_tick ON corrections (site, tick)').execute(db);
 }
 
 const FIRST_TABLES = [
