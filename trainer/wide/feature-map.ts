@@ -1,9 +1,9 @@
 /**
- * What a map into random features must do, whichever way it is built. A map for a Gaussian kernel has outputs whose products
- * z(x)·z(y) come near exp(−|x − y|² / (2 width²)); the more outputs, the nearer.
+ * What a map of a vector into features must do, whichever way it is built: random Fourier features, whose products z(x)·z(y)
+ * come near a Gaussian kernel, and random projections, whose distances come near those of the vectors themselves.
  */
 
-/** A seeded map of a vector into many features. */
+/** A seeded map of a vector into features. */
 export interface FeatureMap {
   readonly inputs: number;
   readonly outputs: number;
@@ -13,19 +13,19 @@ export interface FeatureMap {
    * Writes the features of x.
    *
    * shapes  x (inputs), out (outputs)
-   * units   x in the units of the kernel's width; every feature within ±√(2 / outputs)
+   * units   as the map says
    * throws  nothing; a number that is not finite gives features that are not finite
    * cost    allocates nothing
    */
   apply(x: ArrayLike<number>, out: Float32Array): void;
 }
 
-/** What a map is made from. */
+/** What random Fourier features are made from. */
 export interface FeatureShape {
   readonly inputs: number;
-  /** Even: features come in pairs of a cosine and a sine. */
+  /** Even: features come in pairs of a cosine and a sine, all cosines first. */
   readonly outputs: number;
-  /** Of the Gaussian kernel, in the units of the inputs. */
+  /** Of the Gaussian kernel exp(−|x − y|² / (2 width²)), in the units of the inputs. */
   readonly width: number;
   readonly seed: number;
 }
