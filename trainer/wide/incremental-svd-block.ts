@@ -1,0 +1,232 @@
+/**
+ * Folds blocks of rows into a rank-limited basis. With rows X (b × n), basis V (k × n) and values s: P = X V', E = X − P V
+ * (what is left), E E' = L L'; then [diag(s) V; X] = K [V; L⁻¹E] with K = [diag(s) 0; P L], and the eigenvectors of K'K turn
+ * [V; L⁻¹E] into the new basis. L⁻¹E is never formed: it is folded into the turning. Where little is lost by it, neither is
+ * E: E E' = X X' − P P', and the turning goes to V and X straight.
+ */
+import type { Fold } from './incremental-svd.ts';
+import { diagonalise } from './small-eigen.ts';
+import { measureOrthogonality, ORTHOGONALITY_BOUND, orthonormaliseRows } from './tall-orthonormal.ts';
+import { combineRows, rowProducts, scratchLength } from './tall-rows.ts';
+
+/** Blocks between measurements of the basis. */
+const MEASURE_EVERY = 16;
+/**
+ * A row of which less than this share of the square is left is held against the basis a second time ("twice is enough":
+ * Giraud, Langou & Rozložník, Computers and Mathematics with Applications 50, 2005): rounding of the first is then felt.
+ */
+const SMALL_LEFT = 1e-4;
+/** Below these shares of a row's square, and of what is left of it, there is nothing but rounding. */
+const VANISHED = 1e-26;
+const VANISHED_OF_LEFT = 1e-13;
+
+/** See the file's head. Memory: (rank + block) rows. */
+export class BlockFold implements Fold {
+  readonly #n: number;
+  readonly #most: number;
+  /** Rows 0 … rank − 1 are the basis, rows #most … the block: fixed places, so that rows can be written at any time. */
+  readonly #buffer: Float64Array;
+  readonly #scratch: Float64Array;
+  readonly #p: Float64Array;
+  readonly #again: Float64Array;
+  readonly #left: Float64Array;
+  readonly #squares: Float64Array;
+  readonly #factor: Float64Array;
+  readonly #small: Float64Array;
+  readonly #d: Float64Array;
+  readonly #e: Float64Array;
+  readonly #turn: Float64Array;
+  readonly #pivots: Int32Array;
+  readonly values: Float64Array;
+  rank = 0;
+  discarded = 0;
+  orthogonality = 0;
+  corrections = 0;
+  #folds = 0;
+
+  constructor(columns: number, most: number, block: number) {
+    const size = most + block;
+    this.#n = columns;
+    this.#most = most;
+    this.#buffer = new Float64Array(size * columns);
+    this.#scratch = new Float64Array(scratchLength(size, columns));
+    this.#p = new Float64Array(block * most);
+    this.#again = new Float64Array(block * most);
+    this.#left = new Float64Array(block * block);
+    this.#squares = new Float64Array(block);
+    this.#factor = new Float64Array(block * block);
+    this.#small = new Float64Array(size * size);
+    this.#d = new Float64Array(size);
+    this.#e = new Float64Array(size);
+    this.#turn = new Float64Array(most * size);
+    this.#pivots = new Int32Array(block);
+    this.values = new Float64Array(most);
+  }
+
+  rowAt(i: number): Float64Array {
+    const at = (this.#most + i) * this.#n;
+    return this.#buffer.subarray(at, at + this.#n);
+  }
+
+  fade(factor: number): void {
+    const root = Math.sqrt(factor);
+    for (let k = 0; k < this.rank; k++) this.values[k] *= root;
+    this.discarded *= factor;
+  }
+
+  basis(): Float64Array {
+    return this.#buffer.slice(0, this.rank * this.#n);
+  }
+
+  fold(count: number): void {
+    const isFormed = this.#project(count);
+    const { found, letGo } = factorPivoted(this.#left, this.#squares, count, this.#factor, this.#pivots);
+    this.discarded += letGo;
+    const old = this.rank;
+    this.#decide(count, found);
+    this.#turnBasis(count, found, old, isFormed);
+    this.#folds++;
+    if (this.#folds % MEASURE_EVERY === 0) this.#keepOrthonormal();
+  }
+
+  /** P, and the products of what is left of the rows; true where the rows themselves became what is left of them. */
+  #project(count: number): boolean {
+    const k = this.rank;
+    const n = this.#n;
+    const [p, left, squares] = [this.#p, this.#left, this.#squares];
+    rowProducts(this.#buffer, n, this.#most, count, 0, k, p);
+    rowProducts(this.#buffer, n, this.#most, count, this.#most, count, left);
+    for (let i = 0; i < count; i++) squares[i] = left[i * count + i];
+    let least = 1;
+    for (let i = 0; i < count; i++) {
+      for (let j = 0; j < count; j++) {
+        let sum = 0;
+        for (let c = 0; c < k; c++) sum += p[i * k + c] * p[j * k + c];
+        left[i * count + j] -= sum;
+      }
+      if (squares[i] > 0) least = Math.min(least, left[i * count + i] / squares[i]);
+    }
+    if (k === 0 || least > SMALL_LEFT) return false;
+    this.#takeAway(count, p);
+    rowProducts(this.#buffer, n, this.#most, count, 0, k, this.#again);
+    this.#takeAway(count, this.#again);
+    for (let i = 0; i < count * k; i++) p[i] += this.#again[i];
+    rowProducts(this.#buffer, n, this.#most, count, this.#most, count, left);
+    return true;
+  }
+
+  #takeAway(count: number, p: Float64Array): void {
+    for (let i = 0; i < count * this.rank; i++) this.#turn[i] = -p[i];
+    combineRows(this.#buffer, this.#n, 0, this.rank, this.#turn, this.#most, count, true, this.#scratch);
+  }
+
+  /** Eigenvectors of K'K as rows of `small`, and the new values. */
+  #decide(count: number, found: number): void {
+    const k = this.rank;
+    const size = k + found;
+    const [small, row] = [this.#small, this.#e];
+    small.fill(0, 0, size * size);
+    for (let c = 0; c < k; c++) small[c * size + c] = this.values[c] * this.values[c];
+    for (let i = 0; i < count; i++) {
+      row.set(this.#p.subarray(i * k, i * k + k));
+      row.set(this.#factor.subarray(i * count, i * count + found), k);
+      addLowerProduct(small, row, size);
+    }
+    for (let a = 0; a < size; a++) for (let b = 0; b < a; b++) small[b * size + a] = small[a * size + b];
+    diagonalise(small, size, this.#d, this.#e);
+    this.rank = Math.min(this.#most, size);
+    for (let c = 0; c < this.rank; c++) this.values[c] = Math.sqrt(Math.max(0, this.#d[c]));
+    for (let c = this.rank; c < size; c++) this.discarded += Math.max(0, this.#d[c]);
+  }
+
+  /** New basis = W₁ V + (W₂ L⁻¹) E, or, E not formed, (W₁ − W₂ L⁻¹ P) V + (W₂ L⁻¹) X. */
+  #turnBasis(count: number, found: number, old: number, isFormed: boolean): void {
+    const [turn, small, p] = [this.#turn, this.#small, this.#p];
+    const size = old + found;
+    const width = this.#most + count;
+    turn.fill(0, 0, this.rank * width);
+    for (let r = 0; r < this.rank; r++) {
+      const at = r * width;
+      for (let c = 0; c < old; c++) turn[at + c] = small[r * size + c];
+      solveRow(this.#factor, this.#pivots, count, found, small, r * size + old, this.#e);
+      for (let c = 0; c < found; c++) {
+        const row = this.#pivots[c];
+        const share = this.#e[c];
+        turn[at + this.#most + row] = share;
+        if (isFormed) continue;
+        for (let j = 0; j < old; j++) turn[at + j] -= share * p[row * old + j];
+      }
+    }
+    combineRows(this.#buffer, this.#n, 0, width, turn, 0, this.rank, false, this.#scratch);
+  }
+
+  #keepOrthonormal(): void {
+    this.orthogonality = measureOrthogonality(this.#buffer, this.#n, this.rank, this.#small);
+    if (this.orthogonality <= ORTHOGONALITY_BOUND) return;
+    orthonormaliseRows(this.#buffer, this.#n, this.rank, this.#scratch);
+    this.corrections++;
+    this.orthogonality = measureOrthogonality(this.#buffer, this.#n, this.rank, this.#small);
+  }
+}
+
+/**
+ * Cholesky factor of the products of a block's rows, largest pivot first: row i of `l` is row i of the block in directions of
+ * falling size, direction c that of row pivots[c]. Directions that are nothing but rounding end it; what they held is told.
+ */
+function factorPivoted(
+  a: Float64Array,
+  squares: Float64Array,
+  count: number,
+  l: Float64Array,
+  pivots: Int32Array,
+): { found: number; letGo: number } {
+  const rest = Float64Array.from({ length: count }, (_, i) => a[i * count + i]);
+  const floor = rest.map((left, i) => Math.max(VANISHED * squares[i], VANISHED_OF_LEFT * left));
+  const isTaken = new Uint8Array(count);
+  l.fill(0);
+  let found = 0;
+  for (; found < count; found++) {
+    let best = -1;
+    for (let i = 0; i < count; i++) {
+      if (isTaken[i] === 0 && rest[i] > floor[i] && (best === -1 || rest[i] > rest[best])) best = i;
+    }
+    if (best === -1) break;
+    isTaken[best] = 1;
+    pivots[found] = best;
+    const pivot = Math.sqrt(rest[best]);
+    for (let i = 0; i < count; i++) {
+      if (isTaken[i] === 1 && i !== best) continue;
+      let sum = a[i * count + best];
+      for (let c = 0; c < found; c++) sum -= l[i * count + c] * l[best * count + c];
+      l[i * count + found] = i === best ? pivot : sum / pivot;
+      rest[i] -= l[i * count + found] ** 2;
+    }
+  }
+  let letGo = 0;
+  for (let i = 0; i < count; i++) if (isTaken[i] === 0) letGo += Math.max(0, rest[i]);
+  return { found, letGo };
+}
+
+/** y with y L = x over the pivots' rows. */
+function solveRow(
+  l: Float64Array,
+  pivots: Int32Array,
+  count: number,
+  found: number,
+  x: Float64Array,
+  at: number,
+  y: Float64Array,
+): void {
+  for (let c = found - 1; c >= 0; c--) {
+    let sum = x[at + c];
+    for (let j = c + 1; j < found; j++) sum -= y[j] * l[pivots[j] * count + c];
+    y[c] = sum / l[pivots[c] * count + c];
+  }
+}
+
+function addLowerProduct(to: Float64Array, row: Float64Array, size: number): void {
+  for (let a = 0; a < size; a++) {
+    const f = row[a];
+    for (let b = 0; b <= a; b++) to[a * size + b] += f * row[b];
+  }
+}

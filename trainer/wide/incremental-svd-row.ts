@@ -1,0 +1,169 @@
+/**
+ * Folds rows in one at a time. The basis is kept as C Z: Z the basis as it last stood followed by what was left of each row
+ * since, C a small matrix that alone is turned at every row; long rows are read twice for a row and turned only when the
+ * spare places are full. The small problem is a diagonal one and an outer product, solved as such.
+ */
+import type { Fold } from './incremental-svd.ts';
+import { RankOneEigen } from './rank-one-eigen.ts';
+import { measureOrthogonality, ORTHOGONALITY_BOUND, orthonormaliseRows } from './tall-orthonormal.ts';
+import { combineRows, rowProducts, scratchLength } from './tall-rows.ts';
+
+/** As for blocks: below these shares of a row's square, project again; nothing but rounding. */
+const SMALL_LEFT = 1e-4;
+const VANISHED = 1e-26;
+/** Turnings of the long rows between measurements of the basis. */
+const MEASURE_EVERY = 8;
+
+/** See the file's head. Memory: (2 rank + SPARE) rows at most. */
+export class RowFold implements Fold {
+  /** Places for what is left of rows; more make long rows turn more seldom and be read longer. */
+  static readonly SPARE = 32;
+  readonly #n: number;
+  readonly #most: number;
+  readonly #capacity: number;
+  readonly #buffer: Float64Array;
+  readonly #scratch: Float64Array;
+  /** (rank × width) C, with row stride #capacity; and its next. */
+  #mix: Float64Array;
+  #nextMix: Float64Array;
+  readonly #along: Float64Array;
+  readonly #p: Float64Array;
+  readonly #z: Float64Array;
+  readonly #d: Float64Array;
+  readonly #one = new Float64Array(1);
+  readonly #eigen: RankOneEigen;
+  readonly #products: Float64Array;
+  readonly values: Float64Array;
+  /** Long rows in use; the coming row is written after them. */
+  #width = 0;
+  rank = 0;
+  discarded = 0;
+  orthogonality = 0;
+  corrections = 0;
+  #turns = 0;
+
+  constructor(columns: number, most: number) {
+    this.#n = columns;
+    this.#most = most;
+    this.#capacity = most + RowFold.SPARE;
+    this.#buffer = new Float64Array(this.#capacity * columns);
+    this.#scratch = new Float64Array(scratchLength(most, columns));
+    this.#mix = new Float64Array(most * this.#capacity);
+    this.#nextMix = new Float64Array(most * this.#capacity);
+    this.#along = new Float64Array(this.#capacity);
+    this.#p = new Float64Array(most);
+    this.#z = new Float64Array(most + 1);
+    this.#d = new Float64Array(most + 1);
+    this.#eigen = new RankOneEigen(most + 1);
+    this.#products = new Float64Array(most * most);
+    this.values = new Float64Array(most);
+  }
+
+  rowAt(_: number): Float64Array {
+    const at = this.#width * this.#n;
+    return this.#buffer.subarray(at, at + this.#n);
+  }
+
+  fade(factor: number): void {
+    const root = Math.sqrt(factor);
+    for (let k = 0; k < this.rank; k++) this.values[k] *= root;
+    this.discarded *= factor;
+  }
+
+  basis(): Float64Array {
+    this.#turnLongRows();
+    return this.#buffer.slice(0, this.rank * this.#n);
+  }
+
+  fold(_: number): void {
+    const square = this.#squareLeft();
+    this.#p.fill(0);
+    let left = this.#project(square);
+    if (this.rank > 0 && left < SMALL_LEFT * square) left = this.#project(square);
+    const isNew = left > VANISHED * square;
+    const size = this.rank + (isNew ? 1 : 0);
+    if (size === 0) return;
+    for (let k = 0; k < this.rank; k++) {
+      this.#d[k] = this.values[k] * this.values[k];
+      this.#z[k] = this.#p[k];
+    }
+    if (isNew) {
+      this.#d[this.rank] = 0;
+      this.#z[this.rank] = Math.sqrt(left);
+    } else this.discarded += left;
+    this.#eigen.solve(this.#d, this.#z, size);
+    this.#turnMix(size, isNew ? 1 / Math.sqrt(left) : 0);
+    if (isNew) this.#width++;
+    if (this.#width === this.#capacity) this.#turnLongRows();
+  }
+
+  /** Takes the row's part along the basis away from it, adding that part to p; gives the square of what is left. */
+  #project(square: number): number {
+    if (this.rank === 0) return square;
+    const [width, stride, along, mix] = [this.#width, this.#capacity, this.#along, this.#mix];
+    rowProducts(this.#buffer, this.#n, width, 1, 0, width, along);
+    const part = this.#z;
+    for (let k = 0; k < this.rank; k++) {
+      let sum = 0;
+      for (let j = 0; j < width; j++) sum += mix[k * stride + j] * along[j];
+      part[k] = sum;
+      this.#p[k] += sum;
+    }
+    along.fill(0, 0, width);
+    for (let k = 0; k < this.rank; k++) {
+      for (let j = 0; j < width; j++) along[j] -= part[k] * mix[k * stride + j];
+    }
+    combineRows(this.#buffer, this.#n, 0, width, along, width, 1, true, this.#scratch);
+    return this.#squareLeft();
+  }
+
+  #squareLeft(): number {
+    rowProducts(this.#buffer, this.#n, this.#width, 1, this.#width, 1, this.#one);
+    return this.#one[0];
+  }
+
+  /** C ← W [C 0; 0 1/ρ], its last row let go where there is one too many. */
+  #turnMix(size: number, reciprocal: number): void {
+    const [stride, width, old] = [this.#capacity, this.#width, this.rank];
+    const { values, vectors } = this.#eigen;
+    const kept = Math.min(size, this.#most);
+    const next = this.#nextMix;
+    for (let r = 0; r < kept; r++) {
+      const to = r * stride;
+      next.fill(0, to, to + width);
+      for (let k = 0; k < old; k++) {
+        const f = vectors[r * size + k];
+        const from = k * stride;
+        for (let j = 0; j < width; j++) next[to + j] += f * this.#mix[from + j];
+      }
+      next[to + width] = size > old ? vectors[r * size + old] * reciprocal : 0;
+      this.values[r] = Math.sqrt(Math.max(0, values[r]));
+    }
+    for (let r = kept; r < size; r++) this.discarded += Math.max(0, values[r]);
+    this.rank = kept;
+    this.#nextMix = this.#mix;
+    this.#mix = next;
+  }
+
+  /** The basis itself, Z ← C Z and C ← I. */
+  #turnLongRows(): void {
+    const [stride, width] = [this.#capacity, this.#width];
+    if (this.rank === 0) return;
+    const dense = new Float64Array(this.rank * width);
+    for (let k = 0; k < this.rank; k++) dense.set(this.#mix.subarray(k * stride, k * stride + width), k * width);
+    combineRows(this.#buffer, this.#n, 0, width, dense, 0, this.rank, false, this.#scratch);
+    this.#mix.fill(0);
+    for (let k = 0; k < this.rank; k++) this.#mix[k * stride + k] = 1;
+    this.#width = this.rank;
+    this.#turns++;
+    if (this.#turns % MEASURE_EVERY === 0) this.#keepOrthonormal();
+  }
+
+  #keepOrthonormal(): void {
+    this.orthogonality = measureOrthogonality(this.#buffer, this.#n, this.rank, this.#products);
+    if (this.orthogonality <= ORTHOGONALITY_BOUND) return;
+    orthonormaliseRows(this.#buffer, this.#n, this.rank, this.#scratch);
+    this.corrections++;
+    this.orthogonality = measureOrthogonality(this.#buffer, this.#n, this.rank, this.#products);
+  }
+}
