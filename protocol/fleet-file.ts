@@ -9,18 +9,18 @@ import { listFaults, showValue } from './issue.ts';
 import { nearestName } from './nearest.ts';
 import { readYamlFile, type YamlKind } from './yaml-file.ts';
 
-/** What one site of a fleet wants otherwise than the command line says; undefined: as there. */
+/** What one site of a fleet wants otherwise than the command line says; absent: as there. */
 export interface FleetEntryOptions {
-  readonly timeZone?: string | undefined;
-  readonly from?: string | undefined;
-  readonly until?: string | undefined;
-  readonly learnShare?: number | undefined;
-  readonly calibrateShare?: number | undefined;
-  readonly maxBytes?: number | undefined;
-  readonly kind?: BundleKind | 'auto' | undefined;
-  readonly useAll?: boolean | undefined;
-  readonly seed?: number | undefined;
-  readonly override?: string | undefined;
+  readonly timeZone?: string;
+  readonly from?: string;
+  readonly until?: string;
+  readonly learnShare?: number;
+  readonly calibrateShare?: number;
+  readonly maxBytes?: number;
+  readonly kind?: BundleKind | 'auto';
+  readonly useAll?: boolean;
+  readonly seed?: number;
+  readonly override?: string;
 }
 
 /** One site of a fleet file; paths as written, relative to the fleet file. */
@@ -98,18 +98,21 @@ const fleetSchema = z.strictObject({ sites: z.array(entrySchema).min(1).max(MOST
 const fleetKeys = (path: readonly PropertyKey[]): readonly string[] =>
   Object.keys(path.length === 0 ? fleetSchema.shape : entrySchema.shape);
 
-const optionsOf = (entry: z.output<typeof entrySchema>): FleetEntryOptions => ({
-  timeZone: entry.time_zone ?? undefined,
-  from: entry.from ?? undefined,
-  until: entry.until ?? undefined,
-  learnShare: entry.learn_share ?? undefined,
-  calibrateShare: entry.calibrate_share ?? undefined,
-  maxBytes: entry.max_bytes ?? undefined,
-  kind: entry.kind ?? undefined,
-  useAll: entry.use_all ?? undefined,
-  seed: entry.seed ?? undefined,
-  override: entry.override ?? undefined,
-});
+const optionsOf = (entry: z.output<typeof entrySchema>): FleetEntryOptions => {
+  const all = {
+    timeZone: entry.time_zone,
+    from: entry.from,
+    until: entry.until,
+    learnShare: entry.learn_share,
+    calibrateShare: entry.calibrate_share,
+    maxBytes: entry.max_bytes,
+    kind: entry.kind,
+    useAll: entry.use_all,
+    seed: entry.seed,
+    override: entry.override,
+  };
+  return Object.fromEntries(Object.entries(all).filter(([, value]) => value !== undefined && value !== null));
+};
 
 /**
  * Reads and checks a fleet file.

@@ -42,7 +42,8 @@ export interface Composition {
   readonly settled: Readonly<Record<string, unknown>>;
 }
 
-const TRAINER_VERSION = '0.1.0';
+/** Version of the trainer, as bundles name it. */
+export const TRAINER_VERSION = '0.1.0';
 /** The probe passes the generator's gap, which lies at ticks 48 to 63. */
 const PROBE_TICKS = 96;
 /** A candidate may be this much worse in squared error before its trial ends it. */

@@ -12,7 +12,8 @@ export interface Progress {
 
 const REDRAW_MS = 120;
 
-function clock(seconds: number): string {
+/** Seconds as people read them. */
+export function clockText(seconds: number): string {
   if (seconds < 60) return `${Math.ceil(seconds)} s`;
   return `${Math.floor(seconds / 60)} min ${Math.ceil(seconds % 60)} s`;
 }
@@ -36,7 +37,7 @@ export function progressLine(
   const pace = rate > 0 ? `, ${count(rate)} ${unit}/s` : '';
   if (total === null || total <= 0) return `${label}: ${count(done)} ${unit}${pace}`;
   const share = Math.min(1, done / total);
-  const left = share > 0 && share < 1 && seconds > 1 ? `, ${clock((seconds * (1 - share)) / share)} left` : '';
+  const left = share > 0 && share < 1 && seconds > 1 ? `, ${clockText((seconds * (1 - share)) / share)} left` : '';
   return `${label}: ${Math.floor(share * 100)} %${pace}${left}`;
 }
 

@@ -2,6 +2,7 @@
 import { ADVISORY, type Site } from '@stillwell/protocol';
 import { Command } from 'commander';
 import { CANDIDATE_FILES, candidateFacts } from '../candidate-files.ts';
+import { TrainError } from '../errors.ts';
 import { type FitSiteJob, type FitSiteWatch, fitSite } from '../fit-site.ts';
 import { fitSummary } from '../fit-summary.ts';
 import { kindOption, reason, several, share, wholeNumber } from '../option-values.ts';
@@ -13,8 +14,11 @@ import { surveyNotes } from '../survey-notes.ts';
 import { timeSpan } from '../time-option.ts';
 
 interface FitCommandOptions {
-  readonly site: string;
-  readonly history: string[];
+  readonly site?: string;
+  readonly history?: string[];
+  readonly fleet?: string;
+  readonly threads?: number;
+  readonly fresh: boolean;
   readonly out: string;
   readonly timeZone?: string;
   readonly from?: string;
@@ -29,12 +33,24 @@ interface FitCommandOptions {
   readonly json: boolean;
 }
 
+/** What of the options a site's job needs. */
+type JobOptions = Omit<FitCommandOptions, 'site' | 'history' | 'fleet' | 'threads' | 'fresh' | 'out' | 'json'>;
+
 /** The command, to be joined to the program. */
 export function fitCommand(): Command {
   return new Command('fit')
-    .description('Learns a model of a site from its history and judges it on the part it never saw.')
-    .requiredOption('--site <file>', 'site file')
-    .requiredOption('--history <files...>', 'CSV or NDJSON files, also gzipped', several)
+    .description(
+      'Learns a model of a site from its history and judges it on the part it never saw; or of many sites at once.',
+    )
+    .option('--site <file>', 'site file')
+    .option('--history <files...>', 'CSV or NDJSON files, also gzipped', several)
+    .option('--fleet <path>', 'instead of both: a fleet file, or a folder with one sub-folder a site')
+    .option(
+      '--threads <count>',
+      'sites fitted at the same time; as many as cores and memory allow',
+      wholeNumber(1, 256),
+    )
+    .option('--fresh', 'with --fleet: fit sites again whose inputs and options are unchanged', false)
     .requiredOption('--out <folder>', 'folder for candidate.swc, report.html, hindcast.json and survey.json')
     .option('--time-zone <zone>', "zone of history times that carry none; the site's otherwise")
     .option('--from <time>', 'leave out readings before this time')
@@ -49,14 +65,30 @@ export function fitCommand(): Command {
     .option('--json', 'the result as JSON', false)
     .addHelpText(
       'after',
-      '\nExample:\n  stillwell fit --site site.yaml --history logs/2023.csv logs/2024.csv --out fits/north-well',
+      '\nExamples:\n  stillwell fit --site site.yaml --history logs/2023.csv logs/2024.csv --out fits/north-well\n' +
+        '  stillwell fit --fleet sites --out fits\n\nWith --fleet: exit code 3 where some sites failed and the others were fitted; 130 after Ctrl-C, after which the same\n' +
+        'command goes on with what is left.',
     )
     .action(run);
 }
 
 async function run(options: FitCommandOptions): Promise<void> {
-  const site = readSite(options.site);
-  const { loaded, result, files } = await fitSite(jobOf(site, options), stepsShown());
+  if (options.fleet !== undefined) return runFleet(options, options.fleet);
+  const { site: siteFile, history } = options;
+  if (siteFile === undefined || history === undefined) {
+    const [missing, got] = siteFile === undefined ? ['--site', '--history'] : ['--history', '--site'];
+    const had = siteFile === undefined && history === undefined ? 'none of them' : `${got} alone, without ${missing}`;
+    throw new TrainError(
+      'options',
+      `fit: expected --site and --history, or --fleet, got ${had}; add --help for an example`,
+    );
+  }
+  for (const option of ['threads', 'fresh'] as const) {
+    if (options[option])
+      throw new TrainError('options', `--${option}: expected --fleet beside it, got a single site; leave it out`);
+  }
+  const site = readSite(siteFile);
+  const { loaded, result, files } = await fitSite(jobOf(site, history, options.out, options), stepsShown());
   writeOutputs(files);
   const notes = surveyNotes(loaded.survey);
   process.stdout.write(
@@ -66,11 +98,33 @@ async function run(options: FitCommandOptions): Promise<void> {
   );
 }
 
-function jobOf(site: Site, options: FitCommandOptions): FitSiteJob {
+async function runFleet(options: FitCommandOptions, fleet: string): Promise<void> {
+  for (const option of ['site', 'history'] as const) {
+    if (options[option] !== undefined)
+      throw new TrainError('options', `--${option}: expected no --fleet beside it, got both; leave one of them out`);
+  }
+  if (options.override !== undefined)
+    throw new TrainError(
+      'options',
+      '--override: expected one site that it is the reason for, got --fleet; write override into the entry of that site in a fleet file',
+    );
+  const { out, fresh, json, threads = null } = options;
+  const { fitFleet } = await import('./fit-fleet.ts');
+  await fitFleet({
+    fleet,
+    out,
+    threads,
+    fresh,
+    json,
+    jobOf: (site, history, folder, entry) => jobOf(site, history, folder, { ...options, ...entry }),
+  });
+}
+
+function jobOf(site: Site, history: readonly string[], out: string, options: JobOptions): FitSiteJob {
   return {
     site,
-    history: options.history,
-    out: options.out,
+    history,
+    out,
     zone: options.timeZone ?? null,
     span: timeSpan(options, site.timeZone),
     options: {
