@@ -1,4 +1,5 @@
 export { type Archive, type ArchivedChannel, readArchive } from './desk/archive.ts';
 export { loadHistory } from './history/load.ts';
+export { designBank, featureCount } from './identify/bank.ts';
 export { fitWindowRidge } from './judge/window-ridge.ts';
 export { FIT_DEFAULTS, type FitResult, fit } from './pipeline.ts';

@@ -19,6 +19,8 @@ export interface BenchOptions {
   readonly data: string | null;
   /** Only cases whose name holds this word, of suites that can leave cases out; null: all. */
   readonly only: string | null;
+  /** Folder for profiles of our own side, of suites that can make them; null: none are made. */
+  readonly profile: string | null;
   /** A plain line for people, on stderr under --json. */
   readonly note: (line: string) => void;
 }

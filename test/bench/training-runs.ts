@@ -1,0 +1,99 @@
+/** The real commands on a history of the plant, in child processes: fit, then seal with a test key. */
+import { mkdtempSync, rmSync, writeFileSync } from 'node:fs';
+import { tmpdir } from 'node:os';
+import { join } from 'node:path';
+import { createKeyPair, formatKey } from '@stillwell/protocol';
+import type { BenchOptions, Row } from './harness.ts';
+import { plantSite } from './training-plant.ts';
+import { FailedRun, measure, type Ran, STILLWELL } from './training-process.ts';
+
+/** A folder with the plant's site file and an author key. */
+export interface Workshop {
+  readonly folder: string;
+  readonly site: string;
+  readonly key: string;
+}
+
+/** What a fit or refit said under --json; of a program's own output, so of its present shape. */
+export interface SaidOfFit {
+  readonly bytes: number;
+  readonly mean_skill: number;
+  readonly chosen: {
+    readonly kind: string;
+    readonly bank: string;
+    readonly periodTicks: number;
+    readonly order: number;
+  };
+  readonly timings_ms: Readonly<Record<string, number>>;
+  readonly warnings: readonly string[];
+}
+
+/** A history fitted and sealed. */
+export interface Sealed {
+  readonly seconds: number;
+  readonly cpuSeconds: number;
+  /** Of the fit, which is the larger of the two. */
+  readonly peakMb: number;
+  readonly said: SaidOfFit;
+  /** Folder of the fit and its bundle. */
+  readonly out: string;
+  readonly bundle: string;
+}
+
+/** Rows that need a folder of files, deleted after; a command that fails ends them with a line that says so. */
+export async function* inWorkshop(
+  { note }: BenchOptions,
+  rows: (workshop: Workshop) => AsyncIterable<Row>,
+): AsyncIterable<Row> {
+  const folder = mkdtempSync(join(tmpdir(), 'stillwell-bench-'));
+  const workshop = { folder, site: join(folder, 'site.yaml'), key: join(folder, 'author.key') };
+  try {
+    writeFileSync(workshop.site, plantSite());
+    writeFileSync(workshop.key, formatKey(createKeyPair(new Uint8Array(32).fill(7))), { mode: 0o600 });
+    yield* rows(workshop);
+  } catch (error) {
+    if (!(error instanceof FailedRun)) throw error;
+    note(error.message);
+  } finally {
+    rmSync(folder, { recursive: true, force: true });
+  }
+}
+
+/** Words of a fit. */
+export function fitCommand({ site }: Workshop, history: readonly string[], out: string): readonly string[] {
+  return ['fit', '--site', site, '--history', ...history, '--out', out, '--json'];
+}
+
+/**
+ * From the files of a history to a sealed bundle.
+ *
+ * throws  FailedRun where a command fails
+ */
+export async function fitAndSeal(workshop: Workshop, history: readonly string[], name: string): Promise<Sealed> {
+  const out = join(workshop.folder, name);
+  rmSync(out, { recursive: true, force: true });
+  const fitted = await measure([STILLWELL, ...fitCommand(workshop, history, out)]);
+  const bundle = join(out, 'bundle.swb');
+  const sealed = await seal(workshop, out, bundle);
+  return {
+    seconds: fitted.seconds + sealed.seconds,
+    cpuSeconds: fitted.cpuSeconds + sealed.cpuSeconds,
+    peakMb: Math.max(fitted.peakMb, sealed.peakMb),
+    said: JSON.parse(fitted.stdout) as SaidOfFit,
+    out,
+    bundle,
+  };
+}
+
+function seal({ key }: Workshop, out: string, bundle: string): Promise<Ran> {
+  const words = ['--candidate', join(out, 'candidate.swc'), '--key', key, '--out', bundle];
+  return measure([STILLWELL, 'seal', ...words, '--override', 'a bench, whatever its skill']);
+}
+
+/** Time of a fit by step, in a line. */
+export function stepsOf({ seconds, cpuSeconds, peakMb, said }: Sealed): string {
+  const laps = Object.entries(said.timings_ms).map(([step, ms]) => `${step} ${Math.round(ms)}`);
+  const known = Object.values(said.timings_ms).reduce((sum, ms) => sum + ms, 0);
+  const rest = Math.round(1000 * seconds - known);
+  return `by step, ms: ${laps.join(', ')}, all else (start, reading where not named, writing, sealing) ${rest}; processor ${cpuSeconds.toFixed(1)} s, peak ${peakMb.toFixed(0)} MB`;
+}
