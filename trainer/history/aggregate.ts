@@ -39,6 +39,17 @@ export class TickValue {
     this.#counterTick = tick;
   }
 
+  /** The counter reading that the next one is held against, and its tick: what a later run of ticks must know. */
+  get carried(): readonly [value: number, tick: number] {
+    return [this.#counter, this.#counterTick];
+  }
+
+  /** Goes on from what an earlier run of ticks carried over. */
+  carry([value, tick]: readonly [number, number]): void {
+    this.#counter = value;
+    this.#counterTick = tick;
+  }
+
   /** The tick's value, NaN where it had none; then forgets it. */
   close(): number {
     const count = this.#count;

@@ -4,7 +4,7 @@
  * A payload the mapping cannot read is counted, not refused: on a live broker such things come.
  */
 import { matchesFilter, ProtocolError, readPayload, type Signal } from '@stillwell/protocol';
-import { type FileAccount, type FileReader, tally } from './file-reader.ts';
+import { type FileAccount, type FileReader, type ReaderState, tally } from './file-reader.ts';
 import type { Gathering } from './gathering.ts';
 import { readMemberTime } from './long-ndjson.ts';
 import { LineObjects, shownMember } from './ndjson.ts';
@@ -85,6 +85,21 @@ export class CaptureReader implements FileReader {
     };
   }
 
+  state(): ReaderState {
+    return {
+      ...{ rest: 0, line: this.#lines.number, rows: this.rows, names: [], missingMarks: {} },
+      ...{ ignored: [...this.#ignored], passedOver: this.#passedOver, arrivedMs: this.#arrivedMs },
+    };
+  }
+
+  restore(state: ReaderState): void {
+    this.#lines.number = state.line;
+    this.rows = state.rows;
+    Object.assign(this.#passedOver, state.passedOver);
+    for (const topic of state.ignored ?? []) this.#ignored.add(topic);
+    this.#arrivedMs = state.arrivedMs ?? Number.NEGATIVE_INFINITY;
+  }
+
   #channels(topic: string): readonly number[] {
     let channels = this.#channelsOf.get(topic);
     if (!channels) {
@@ -107,7 +122,7 @@ export class CaptureReader implements FileReader {
       const signal = this.#signals[channel] as Signal;
       try {
         const { value, timeMs } = readPayload(signal.payload, payload);
-        this.#gathering.add(channel, timeMs ?? arrivedMs, value);
+        this.#gathering.add(channel, timeMs ?? arrivedMs, value, number);
       } catch (cause) {
         if (!(cause instanceof ProtocolError)) throw cause;
         tally(this.#passedOver, `payload of ${signal.name} not readable`);

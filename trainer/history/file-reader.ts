@@ -8,6 +8,22 @@ import type { TimeReader } from './times.ts';
 /** What a reader can tell of a file once it is through. */
 export type FileAccount = Omit<FileRead, 'file' | 'bytes' | 'sha256' | 'timeKind'>;
 
+/** Where a reader stands between two blocks, as plain data: a later run goes on from there. */
+export interface ReaderState {
+  /** Bytes of the last blocks that it has not yet made use of. */
+  readonly rest: number;
+  /** Line it stands at, as the reader counts. */
+  readonly line: number;
+  readonly rows: number;
+  /** Names in the header; none where the format has no header. */
+  readonly names: readonly string[];
+  readonly missingMarks: Readonly<Record<string, number>>;
+  readonly ignored?: readonly string[];
+  readonly passedOver?: Readonly<Record<string, number>>;
+  /** Time of the last message. */
+  readonly arrivedMs?: number | null;
+}
+
 /** The reader of one file: blocks in, an account out. */
 export interface FileReader {
   /** Takes the next block of whole lines. */
@@ -16,6 +32,10 @@ export interface FileReader {
   end(): FileAccount;
   /** Rows so far, for progress. */
   readonly rows: number;
+  /** Where it stands. */
+  state(): ReaderState;
+  /** Goes on where an earlier run stood, before any block is taken. */
+  restore(state: ReaderState): void;
 }
 
 /** Adds one to a count. */

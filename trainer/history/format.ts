@@ -79,7 +79,17 @@ export function readerFor(
   gathering: Gathering,
   times: TimeReader,
 ): FileReader {
-  const { kind, separator } = findFormat(path, block);
+  return readerOf(findFormat(path, block), path, site, gathering, times);
+}
+
+/** The reader of a file whose format is known. */
+export function readerOf(
+  { kind, separator }: Format,
+  path: string,
+  site: Site,
+  gathering: Gathering,
+  times: TimeReader,
+): FileReader {
   const channels = channelsOf(site);
   const columns = channels.map((channel) => channel.column);
   const channelOf = new Map(columns.map((column, c) => [column, c]));

@@ -9,6 +9,8 @@ import type { ChannelReadings } from './history.ts';
 export interface Block {
   readonly times: GrowingList;
   readonly values: readonly (GrowingList | null)[];
+  /** Where each reading stands in its file, counted from 1; null where nobody asks. */
+  readonly lines: GrowingList | null;
 }
 
 /** What to keep: half-open span of time. */
@@ -27,11 +29,20 @@ export class Gathering {
   readonly previousMs: Float64Array;
   previousRowMs = Number.NEGATIVE_INFINITY;
 
-  constructor(channelCount: number, span: Span) {
+  readonly #withLines: boolean;
+
+  constructor(channelCount: number, span: Span, withLines = false) {
+    this.#withLines = withLines;
     this.channelCount = channelCount;
     this.span = span;
     this.#long = new Array<Block | null>(channelCount).fill(null);
     this.previousMs = new Float64Array(channelCount).fill(Number.NEGATIVE_INFINITY);
+  }
+
+  /** Times of the last readings, for a file that follows: it may begin inside a doubled hour. */
+  carryTo(next: Gathering): void {
+    next.previousRowMs = this.previousRowMs;
+    next.previousMs.set(this.previousMs);
   }
 
   /** A block for the channels of one wide file. */
@@ -39,13 +50,13 @@ export class Gathering {
     const values = Array.from({ length: this.channelCount }, (_, c) =>
       channels.includes(c) ? new GrowingList() : null,
     );
-    const block = { times: new GrowingList(), values };
+    const block = { times: new GrowingList(), values, lines: this.#withLines ? new GrowingList() : null };
     this.#blocks.push(block);
     return block;
   }
 
   /** Adds one reading of a long file. */
-  add(channel: number, timeMs: number, value: number): void {
+  add(channel: number, timeMs: number, value: number, line: number): void {
     if (timeMs < this.span.fromMs || timeMs >= this.span.untilMs) return;
     let block = this.#long[channel];
     if (!block) {
@@ -54,6 +65,12 @@ export class Gathering {
     }
     block.times.push(timeMs);
     block.values[channel]?.push(value);
+    block.lines?.push(line);
+  }
+
+  /** What was gathered so far; a streaming reader takes it away and clears the lists, which the readers then fill again. */
+  get blocks(): readonly Block[] {
+    return this.#blocks;
   }
 
   /** True where some file holds the channel. */

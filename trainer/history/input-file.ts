@@ -22,7 +22,8 @@ const NEWLINE = 10;
 export interface InputFile {
   readonly path: string;
   readonly bytes: number;
-  readonly isPacked: boolean;
+  /** Told from the first bytes, never from the name. */
+  readonly kind: 'text' | 'gzip' | 'zstd' | 'Parquet';
 }
 
 /** What reading it through told. */
@@ -72,7 +73,14 @@ export function inspectFile(path: string): InputFile {
     throw new TrainError('file', `${path}: expected a header line and readings, got an empty file; export it again`);
   if ((head[0] === 0xff && head[1] === 0xfe) || (head[0] === 0xfe && head[1] === 0xff))
     throw refusal({ file: path }, 'UTF-8 text', 'UTF-16 text', 'save or convert the file as UTF-8');
-  return { path, bytes, isPacked: head[0] === 0x1f && head[1] === 0x8b };
+  return { path, bytes, kind: kindOf(head) };
+}
+
+/** RFC 1952 section 2.3.1, RFC 8878 section 3.1.1, and the magic of the Parquet format. */
+function kindOf(head: Buffer): InputFile['kind'] {
+  if (head[0] === 0x1f && head[1] === 0x8b) return 'gzip';
+  if (head.readUInt32LE(0) === 0xfd2fb528) return 'zstd';
+  return head.toString('latin1') === 'PAR1' ? 'Parquet' : 'text';
 }
 
 /** Refuses a block that is not UTF-8 text, naming the line. */
@@ -113,30 +121,34 @@ function countLines(block: Uint8Array): number {
  * Yields the file as blocks that end with a line break (the last one may not), a byte order mark taken off.
  *
  * onBytes  told the stored bytes read so far
+ * options  blockBytes: stored bytes read at once; fromByte: bytes of text that an earlier run took already, which are
+ *          passed over (but hashed again, so that the digest is of the whole file)
  * returns  the digest, once all blocks were taken
  * throws   TrainError 'file' or 'history' with file and line
  */
 export async function* readBlocks(
   file: InputFile,
   onBytes: (done: number) => void,
+  { blockBytes = BLOCK_BYTES, fromByte = 0 }: { blockBytes?: number; fromByte?: number } = {},
 ): AsyncGenerator<Buffer, FileDigest> {
   const hash = createHash('sha256');
   let done = 0;
-  const stored = createReadStream(file.path, { highWaterMark: BLOCK_BYTES });
+  const stored = createReadStream(file.path, { highWaterMark: blockBytes });
   stored.on('data', (chunk) => {
     hash.update(chunk);
     done += chunk.length;
     onBytes(done);
   });
   let source: Readable = stored;
-  if (file.isPacked) {
-    const unpacked = createGunzip({ chunkSize: BLOCK_BYTES });
+  if (file.kind === 'gzip') {
+    const unpacked = createGunzip({ chunkSize: blockBytes });
     stored.on('error', (cause) => unpacked.destroy(cause));
     source = stored.pipe(unpacked);
   }
   let rest: Buffer = Buffer.alloc(0);
   let line = 1;
   let isFirst = true;
+  let toSkip = fromByte;
   try {
     for await (const chunk of source) {
       let block: Buffer = rest.length > 0 ? Buffer.concat([rest, chunk]) : chunk;
@@ -156,7 +168,14 @@ export async function* readBlocks(
         );
       }
       if (end === 0) continue;
-      const whole = block.subarray(0, end);
+      let whole = block.subarray(0, end);
+      if (toSkip > 0) {
+        const taken = Math.min(toSkip, whole.length);
+        line += countLines(whole.subarray(0, taken));
+        toSkip -= taken;
+        whole = whole.subarray(taken);
+        if (whole.length === 0) continue;
+      }
       checkText(file.path, whole, line);
       line += countLines(whole);
       yield whole;

@@ -2,7 +2,14 @@
  * Long CSV: one row a reading, with columns for time, signal and value. Signals the site does not name are passed over.
  */
 import { longColumns, readHeader, separatorName } from './csv-header.ts';
-import { type FileAccount, type FileReader, numberRefusal, tally, timeRefusal } from './file-reader.ts';
+import {
+  type FileAccount,
+  type FileReader,
+  numberRefusal,
+  type ReaderState,
+  tally,
+  timeRefusal,
+} from './file-reader.ts';
 import type { Gathering } from './gathering.ts';
 import { numberOfText } from './numbers.ts';
 import { RecordScanner, type RecordView } from './records.ts';
@@ -57,6 +64,21 @@ export class LongCsvReader implements FileReader {
     };
   }
 
+  state(): ReaderState {
+    const { rest, line } = this.#scanner;
+    const { rows } = this;
+    return { rest, line, rows, names: this.#names, missingMarks: this.#missingMarks, ignored: [...this.#ignored] };
+  }
+
+  restore(state: ReaderState): void {
+    this.#scanner.restore(state.line);
+    this.rows = state.rows;
+    Object.assign(this.#missingMarks, state.missingMarks);
+    for (const name of state.ignored ?? []) this.#ignored.add(name);
+    this.#names = state.names;
+    if (state.names.length > 0) this.#columns = longColumns(state.names);
+  }
+
   #take(record: RecordView): void {
     if (this.#columns === null) {
       this.#names = readHeader(this.#path, record);
@@ -108,6 +130,6 @@ export class LongCsvReader implements FileReader {
         throw numberRefusal(this.#path, record.line, this.#names[columns.value] as string, text);
       tally(this.#missingMarks, text);
     }
-    this.#gathering.add(channel, timeMs, value);
+    this.#gathering.add(channel, timeMs, value, record.line);
   }
 }

@@ -1,7 +1,14 @@
 /**
  * Long NDJSON: {"time", "signal", "value"} a line. Signals the site does not name are passed over.
  */
-import { type FileAccount, type FileReader, numberRefusal, tally, timeRefusal } from './file-reader.ts';
+import {
+  type FileAccount,
+  type FileReader,
+  numberRefusal,
+  type ReaderState,
+  tally,
+  timeRefusal,
+} from './file-reader.ts';
 import type { Gathering } from './gathering.ts';
 import { LineObjects, shownMember } from './ndjson.ts';
 import { numberOfText } from './numbers.ts';
@@ -43,6 +50,21 @@ export class LongNdjsonReader implements FileReader {
     };
   }
 
+  state(): ReaderState {
+    const { rows } = this;
+    return {
+      ...{ rest: 0, line: this.#lines.number, rows, names: [] },
+      ...{ missingMarks: this.#missingMarks, ignored: [...this.#ignored] },
+    };
+  }
+
+  restore(state: ReaderState): void {
+    this.#lines.number = state.line;
+    this.rows = state.rows;
+    Object.assign(this.#missingMarks, state.missingMarks);
+    for (const name of state.ignored ?? []) this.#ignored.add(name);
+  }
+
   #row(line: Readonly<Record<string, unknown>>, number: number): void {
     const { signal } = line;
     if (typeof signal !== 'string' || signal === '')
@@ -66,7 +88,7 @@ export class LongNdjsonReader implements FileReader {
       this.#gathering.previousMs[channel] as number,
     );
     this.#gathering.previousMs[channel] = timeMs;
-    this.#gathering.add(channel, timeMs, this.#value(line.value, number));
+    this.#gathering.add(channel, timeMs, this.#value(line.value, number), number);
   }
 
   #value(member: unknown, number: number): number {

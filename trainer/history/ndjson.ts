@@ -9,7 +9,8 @@ const NEWLINE = 10;
 export class LineObjects {
   readonly #path: string;
   readonly #onLine: (line: Readonly<Record<string, unknown>>, number: number) => void;
-  #number = 0;
+  /** Lines so far. */
+  number = 0;
 
   constructor(path: string, onLine: (line: Readonly<Record<string, unknown>>, number: number) => void) {
     this.#path = path;
@@ -21,10 +22,10 @@ export class LineObjects {
     for (let from = 0; from < block.length; ) {
       const newline = block.indexOf(NEWLINE, from);
       const end = newline < 0 ? block.length : newline;
-      this.#number++;
+      this.number++;
       const text = block.toString('utf8', from, end).trim();
       from = end + 1;
-      if (text !== '') this.#onLine(this.#parse(text), this.#number);
+      if (text !== '') this.#onLine(this.#parse(text), this.number);
     }
   }
 
@@ -34,7 +35,7 @@ export class LineObjects {
       value = JSON.parse(text);
     } catch (cause) {
       throw refusal(
-        { file: this.#path, line: this.#number },
+        { file: this.#path, line: this.number },
         'one JSON object a line',
         shown(text),
         'mend or drop this line',
@@ -42,7 +43,7 @@ export class LineObjects {
       );
     }
     if (typeof value === 'object' && value !== null && !Array.isArray(value)) return value as Record<string, unknown>;
-    throw refusal({ file: this.#path, line: this.#number }, 'a JSON object', shown(text), 'mend or drop this line');
+    throw refusal({ file: this.#path, line: this.number }, 'a JSON object', shown(text), 'mend or drop this line');
   }
 }
 

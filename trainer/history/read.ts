@@ -14,6 +14,7 @@ import { Gathering } from './gathering.ts';
 import type { FileRead, History } from './history.ts';
 import { type InputFile, inspectFile, readBlocks } from './input-file.ts';
 import { refusal, shown } from './refusal.ts';
+import { SpanWatch } from './span-watch.ts';
 import { TimeReader } from './times.ts';
 import { checkZone } from './zone.ts';
 
@@ -30,12 +31,16 @@ export interface ReadOptions {
   readonly progress?: Progress;
 }
 
+/** A history holds more ticks than its reader was to take. */
+class TooLong extends Error {}
+
 async function readOne(
   file: InputFile,
   site: Site,
   gathering: Gathering,
   times: TimeReader,
   onBytes: (done: number, rows: number) => void,
+  watch: SpanWatch | null,
 ): Promise<FileRead> {
   times.nextFile();
   let reader: FileReader | null = null;
@@ -58,12 +63,16 @@ async function readOne(
     }
     reader ??= readerFor(file.path, next.value, site, gathering, times);
     reader.push(next.value);
+    if (watch?.isPassed(gathering)) {
+      await blocks.return({ sha256: '' });
+      throw new TooLong();
+    }
   }
 }
 
 /** Refuses a signal that no file holds, with the likeliest column it was meant to be. */
-function refuseUnseen(site: Site, gathering: Gathering, files: readonly FileRead[]): void {
-  const unseen = channelsOf(site).find((_, c) => !gathering.holds(c));
+export function refuseUnseen(site: Site, holds: (channel: number) => boolean, files: readonly FileRead[]): void {
+  const unseen = channelsOf(site).find((_, c) => !holds(c));
   if (unseen === undefined) return;
   const others = [...new Set(files.flatMap(({ columnsIgnored }) => columnsIgnored))];
   const isCapture = files.every(({ format }) => format === 'MQTT capture');
@@ -97,6 +106,34 @@ function listed(names: readonly string[]): string {
  * throws  TrainError 'file' or 'history', with file, line and column, at the first thing that cannot be read
  */
 export async function readHistory(files: readonly string[], site: Site, options: ReadOptions): Promise<History> {
+  return readWatched(files, site, options, null);
+}
+
+/**
+ * As `readHistory`, but null as soon as the history is seen to span more ticks than `mostTicks`.
+ *
+ * throws  as `readHistory`
+ */
+export async function readShort(
+  files: readonly string[],
+  site: Site,
+  options: ReadOptions,
+  mostTicks: number,
+): Promise<History | null> {
+  try {
+    return await readWatched(files, site, options, new SpanWatch(site.tickMs, mostTicks));
+  } catch (cause) {
+    if (cause instanceof TooLong) return null;
+    throw cause;
+  }
+}
+
+async function readWatched(
+  files: readonly string[],
+  site: Site,
+  options: ReadOptions,
+  watch: SpanWatch | null,
+): Promise<History> {
   if (files.length === 0)
     throw new TrainError('options', 'history: expected at least one file, got none; name them after --history');
   if (options.zone !== null) checkZone(options.zone);
@@ -115,11 +152,18 @@ export async function readHistory(files: readonly string[], site: Site, options:
     for (const input of inputs) {
       const before = bytesBefore;
       read.push(
-        await readOne(input, site, gathering, times, (done, rows) => {
-          const bytes = before + done;
-          const rowsDone = rowsBefore + rows;
-          options.progress?.update(rowsDone, bytes > 0 ? Math.round((rowsDone * totalBytes) / bytes) : null);
-        }),
+        await readOne(
+          input,
+          site,
+          gathering,
+          times,
+          (done, rows) => {
+            const bytes = before + done;
+            const rowsDone = rowsBefore + rows;
+            options.progress?.update(rowsDone, bytes > 0 ? Math.round((rowsDone * totalBytes) / bytes) : null);
+          },
+          watch,
+        ),
       );
       bytesBefore += input.bytes;
       rowsBefore += read.at(-1)?.rows ?? 0;
@@ -127,7 +171,7 @@ export async function readHistory(files: readonly string[], site: Site, options:
   } finally {
     options.progress?.end();
   }
-  refuseUnseen(site, gathering, read);
+  refuseUnseen(site, (c) => gathering.holds(c), read);
   return {
     channels: gathering.channels(channels.map((channel) => channel.name)),
     signalCount: site.signals.length,

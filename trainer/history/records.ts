@@ -62,6 +62,21 @@ export class RecordScanner {
     this.#onRecord = onRecord;
   }
 
+  /** Bytes taken but not yet cut: a record whose quotes are still open. */
+  get rest(): number {
+    return this.#rest.length;
+  }
+
+  /** Line of the next record. */
+  get line(): number {
+    return this.#line;
+  }
+
+  /** Goes on at a line, before any block is taken. */
+  restore(line: number): void {
+    this.#line = line;
+  }
+
   /** Takes a block that ends with a line break, or the last one. */
   push(block: Uint8Array): void {
     const bytes = this.#rest.length > 0 ? Buffer.concat([this.#rest, block]) : block;

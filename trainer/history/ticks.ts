@@ -4,11 +4,11 @@
  * left out.
  */
 import { createHash } from 'node:crypto';
-import { latticeIndex, latticeValue, type Signal, type Site } from '@stillwell/protocol';
+import type { Signal, Site } from '@stillwell/protocol';
 import { TrainError } from '../errors.ts';
-import { TickValue } from './aggregate.ts';
 import { channelsOf } from './channels.ts';
 import type { ChannelReadings, History } from './history.ts';
+import { layChannel } from './lay-channel.ts';
 import { type Plausibility, type Plausible, plausibilityOf } from './plausible.ts';
 import { findLattices, type Lattice } from './resolution.ts';
 import type { Series } from './series.ts';
@@ -43,63 +43,6 @@ export function tickSpan(
     }
   }
   return readings === 0 ? null : { first: Math.floor(first / tickMs), last: Math.floor(last / tickMs), readings };
-}
-
-/**
- * Tells rows that a logger wrote twice: the same value at the same time. In sums they would count twice, and a counter
- * that went on in between would seem to have been reset.
- */
-class RepeatFilter {
-  #time = Number.NaN;
-  readonly #values: number[] = [];
-
-  /** Times must not fall. */
-  isRepeat(time: number, value: number): boolean {
-    if (time !== this.#time) this.#values.length = 0;
-    this.#time = time;
-    if (this.#values.includes(value)) return true;
-    this.#values.push(value);
-    return false;
-  }
-}
-
-function layChannel(
-  channel: ChannelReadings,
-  signal: Signal,
-  lattice: Lattice,
-  order: Uint32Array | null,
-  span: { tickMs: number; first: number; ticks: number },
-  plausible: Plausible,
-  untilMs: number,
-): Float64Array {
-  const laid = new Float64Array(span.ticks).fill(Number.NaN);
-  const furthest = Number.MAX_SAFE_INTEGER * lattice.step;
-  const isTaken = (value: number, timeMs: number): boolean =>
-    timeMs < untilMs || plausible.isDeclared
-      ? value >= plausible.low && value <= plausible.high
-      : Math.abs(value) <= furthest;
-  const tick = new TickValue(signal.aggregate);
-  const repeats = signal.aggregate === 'sum' || signal.aggregate === 'increment' ? new RepeatFilter() : null;
-  let open = -1;
-  const close = (): void => {
-    const value = tick.close();
-    if (!Number.isNaN(value))
-      laid[open] = latticeValue(latticeIndex(value, lattice.step, lattice.offset), lattice.step, lattice.offset);
-  };
-  for (let n = 0; n < channel.times.length; n++) {
-    const i = order === null ? n : (order[n] as number);
-    const value = channel.values[i] as number;
-    if (!isTaken(value, channel.times[i] as number)) continue;
-    if (repeats?.isRepeat(channel.times[i] as number, value)) continue;
-    const k = Math.floor((channel.times[i] as number) / span.tickMs) - span.first;
-    if (k !== open) {
-      if (open >= 0) close();
-      open = k;
-    }
-    tick.add(k, value);
-  }
-  if (open >= 0) close();
-  return laid;
 }
 
 /** SHA-256 over tick, span and values of a series. */

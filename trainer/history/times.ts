@@ -41,11 +41,25 @@ const NO_ZONE: TimeProblem = {
   remedy: 'say where its clock stood, for instance --time-zone Europe/London, or time_zone in the site file',
 };
 
+/** Where a reader of times stands. */
+export interface TimeState {
+  readonly kind: TimeKind | null;
+  readonly rising: number;
+  readonly isZoned: boolean;
+  readonly changes: readonly (readonly [
+    atMs: number,
+    found: { readonly kind: 'skipped' | 'doubled'; readonly first: number; readonly second: number },
+  ])[];
+}
+
 /** Reads times of one source in file order; shared by the files of one history, so that a doubled hour may span two. */
 export class TimeReader {
   readonly #zoneName: string | null;
-  #zone: ZoneRules | null = null;
-  readonly #changes = new Map<number, { kind: 'skipped' | 'doubled'; first: number; second: number }>();
+  /** Zone in use, and what its changes did: the same for the files of one history that are read side by side. */
+  readonly #shared: {
+    zone: ZoneRules | null;
+    readonly changes: Map<number, { kind: 'skipped' | 'doubled'; first: number; second: number }>;
+  };
   readonly #resolved: Resolved = { utcMs: 0, kind: 'plain', changeMs: 0 };
   #cachedDate = -1;
   #cachedDayMs = 0;
@@ -56,9 +70,13 @@ export class TimeReader {
   /** Set where `read` answered NaN. */
   problem: TimeProblem = NO_TIME;
 
-  /** zoneName  IANA name or fixed offset for times that carry none; null: such times are refused */
-  constructor(zoneName: string | null) {
+  /**
+   * zoneName  IANA name or fixed offset for times that carry none; null: such times are refused
+   * beside    reader of another file of the same history; null: alone
+   */
+  constructor(zoneName: string | null, beside: TimeReader | null = null) {
     this.#zoneName = zoneName;
+    this.#shared = beside === null ? { zone: null, changes: new Map() } : beside.#shared;
   }
 
   /** Forgets the kind of time before the next file. */
@@ -67,16 +85,34 @@ export class TimeReader {
     this.#rising = 0;
   }
 
+  /** What of this file's times tells the next ones, and the clock changes met, as plain data. */
+  state(): TimeState {
+    return {
+      kind: this.kind,
+      rising: this.#rising,
+      isZoned: this.#shared.zone !== null,
+      changes: [...this.#shared.changes],
+    };
+  }
+
+  /** Goes on from an earlier run. */
+  restore({ kind, rising, isZoned, changes }: TimeState): void {
+    this.kind = kind;
+    this.#rising = rising;
+    if (isZoned && this.#zoneName !== null) this.#shared.zone ??= new ZoneRules(this.#zoneName);
+    for (const [at, found] of changes) this.#shared.changes.set(at, { ...found });
+  }
+
   /** Zone that was needed; null where every time carried its own. */
   get zone(): string | null {
-    return this.#zone?.name ?? null;
+    return this.#shared.zone?.name ?? null;
   }
 
   /** What clock changes did so far, by instant. */
   get changes(): readonly ClockChange[] {
-    return [...this.#changes]
+    return [...this.#shared.changes]
       .sort((a, b) => a[0] - b[0])
-      .map(([atMs, found]) => ({ atMs, ...(this.#zone as ZoneRules).describe(atMs), ...found }));
+      .map(([atMs, found]) => ({ atMs, ...(this.#shared.zone as ZoneRules).describe(atMs), ...found }));
   }
 
   /**
@@ -107,6 +143,19 @@ export class TimeReader {
   /** A count since 1970, as JSON numbers give it. */
   readNumber(value: number): number {
     return this.#epoch(value);
+  }
+
+  /** A local time without a zone, ms as if it were UTC, as columns of times hold it. */
+  readLocal(localMs: number, previousMs: number): number {
+    const ms = this.#local(localMs, previousMs);
+    if (ms > previousMs) this.#rising++;
+    else if (ms < previousMs) this.#rising--;
+    return ms;
+  }
+
+  /** An instant, ms since 1970 UTC, as columns of times with a zone hold it. */
+  readInstant(utcMs: number): number {
+    return this.#isKind('ISO with zone') ? utcMs : Number.NaN;
   }
 
   #refuse(problem: TimeProblem): number {
@@ -213,18 +262,18 @@ export class TimeReader {
   #local(localMs: number, previousMs: number): number {
     if (this.#zoneName === null) return this.#refuse(NO_ZONE);
     if (!this.#isKind('ISO without zone')) return Number.NaN;
-    this.#zone ??= new ZoneRules(this.#zoneName);
+    this.#shared.zone ??= new ZoneRules(this.#zoneName);
     const resolved = this.#resolved;
-    this.#zone.resolve(localMs, previousMs, this.#rising < 0, resolved);
+    this.#shared.zone.resolve(localMs, previousMs, this.#rising < 0, resolved);
     if (resolved.kind !== 'plain') this.#note(resolved);
     return resolved.utcMs;
   }
 
   #note(resolved: Resolved): void {
-    let found = this.#changes.get(resolved.changeMs);
+    let found = this.#shared.changes.get(resolved.changeMs);
     if (!found) {
       found = { kind: resolved.kind === 'skipped' ? 'skipped' : 'doubled', first: 0, second: 0 };
-      this.#changes.set(resolved.changeMs, found);
+      this.#shared.changes.set(resolved.changeMs, found);
     }
     if (resolved.kind === 'second') found.second++;
     else found.first++;

@@ -2,7 +2,14 @@
  * Wide CSV: one row a time, one column a signal. The reader of long histories, so the loop over fields makes no objects.
  */
 import { readHeader, separatorName, timeColumn } from './csv-header.ts';
-import { type FileAccount, type FileReader, numberRefusal, tally, timeRefusal } from './file-reader.ts';
+import {
+  type FileAccount,
+  type FileReader,
+  numberRefusal,
+  type ReaderState,
+  tally,
+  timeRefusal,
+} from './file-reader.ts';
 import type { Block, Gathering } from './gathering.ts';
 import { numberOfBytes, numberOfText } from './numbers.ts';
 import { RecordScanner, type RecordView } from './records.ts';
@@ -56,12 +63,23 @@ export class WideCsvReader implements FileReader {
   }
 
   #take(record: RecordView): void {
-    if (this.#names === null) this.#begin(record);
+    if (this.#names === null) this.#begin(readHeader(this.#path, record));
     else this.#row(record, this.#names);
   }
 
-  #begin(record: RecordView): void {
-    const names = readHeader(this.#path, record);
+  state(): ReaderState {
+    const { rest, line } = this.#scanner;
+    return { rest, line, rows: this.rows, names: this.#names ?? [], missingMarks: this.#missingMarks };
+  }
+
+  restore(state: ReaderState): void {
+    this.#scanner.restore(state.line);
+    this.rows = state.rows;
+    Object.assign(this.#missingMarks, state.missingMarks);
+    if (state.names.length > 0) this.#begin(state.names);
+  }
+
+  #begin(names: readonly string[]): void {
     this.#time = timeColumn(names);
     this.#names = names;
     this.#channels = this.#wanted.flatMap((column, channel) => (names.includes(column) ? [channel] : []));
@@ -91,6 +109,7 @@ export class WideCsvReader implements FileReader {
     if (timeMs < fromMs || timeMs >= untilMs) return;
     const block = this.#block as Block;
     block.times.push(timeMs);
+    block.lines?.push(record.line);
     const columns = this.#columns;
     const channels = this.#channels;
     for (let c = 0; c < columns.length; c++) {
