@@ -5,6 +5,7 @@
 import { type BenchOptions, isWanted, type Row } from './harness.ts';
 import { growthRows } from './training-growth.ts';
 import { historyRows } from './training-history.ts';
+import { refitRows } from './training-refit.ts';
 
 interface Group {
   /** The rows' names begin with it. */
@@ -17,6 +18,7 @@ interface Group {
 const GROUPS: readonly Group[] = [
   { name: 'history', rows: historyRows },
   { name: 'growth', rows: growthRows },
+  { name: 'refit', rows: refitRows },
 ];
 
 /** Rows of the suite. */
