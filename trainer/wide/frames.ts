@@ -26,3 +26,9 @@ export interface FrameSource {
   /** Reads from the beginning. */
   chunks(): AsyncIterable<FrameChunk>;
 }
+
+/** When frames were taken, told by a person where the recording does not say. */
+export interface FrameTimes {
+  readonly startMs?: number;
+  readonly tickMs?: number;
+}

@@ -1,0 +1,111 @@
+/** Frames out of Parquet files, which DuckDB writes for the test. */
+import { mkdtempSync, rmSync, writeFileSync } from 'node:fs';
+import { tmpdir } from 'node:os';
+import { join } from 'node:path';
+import { DuckDBInstance } from '@duckdb/node-api';
+import { afterAll, beforeAll, describe, expect, test } from 'vitest';
+import type { FrameSource } from '../../../trainer/wide/frames.ts';
+import { openParquetFrames } from '../../../trainer/wide/parquet-frames.ts';
+
+const folder = mkdtempSync(join(tmpdir(), 'frames-'));
+let instance: DuckDBInstance;
+beforeAll(async () => {
+  instance = await DuckDBInstance.create(':memory:');
+});
+afterAll(() => {
+  instance.closeSync();
+  rmSync(folder, { recursive: true });
+});
+
+async function written(select: string, options = ''): Promise<string> {
+  const path = join(folder, 'a.parquet');
+  const connection = await instance.connect();
+  await connection.run(`COPY (${select}) TO '${path}' (FORMAT parquet${options})`);
+  connection.closeSync();
+  return path;
+}
+
+async function read(source: FrameSource): Promise<number[][]> {
+  const frames: number[][] = [];
+  for await (const { count, values } of source.chunks())
+    for (let k = 0; k < count; k++)
+      frames.push([...values.subarray(k * source.frameLength, (k + 1) * source.frameLength)]);
+  return frames;
+}
+
+const START = "TIMESTAMP '2030-01-01 00:00:00'";
+
+describe('frames', () => {
+  test('out of a column of lists, with times', async () => {
+    const path = await written(
+      `SELECT ${START} + to_milliseconds(40 * i) AS t, [i, i + 0.5, -i]::DOUBLE[] AS pixels FROM range(5000) r(i) ORDER BY i`,
+      ', ROW_GROUP_SIZE 2048',
+    );
+    const source = await openParquetFrames(path);
+    expect(source).toMatchObject({ frameLength: 3, count: 5000, startMs: Date.UTC(2030, 0, 1), tickMs: 40 });
+    const frames = await read(source);
+    expect(frames).toEqual(Array.from({ length: 5000 }, (_, i) => [i, i + 0.5, 0 - i]));
+  });
+
+  test('out of a column a number, in the order of the columns; times told by hand', async () => {
+    const path = await written('SELECT i::INTEGER AS b2, (i / 4)::FLOAT AS b1 FROM range(3) r(i)');
+    const source = await openParquetFrames(path, { startMs: 7, tickMs: 1000 });
+    expect(source).toMatchObject({ frameLength: 2, count: 3, startMs: 7, tickMs: 1000 });
+    expect(await read(source)).toEqual([
+      [0, 0],
+      [1, 0.25],
+      [2, 0.5],
+    ]);
+  });
+
+  test('out of fixed-size arrays', async () => {
+    expect(await read(await openParquetFrames(await written('SELECT [1, 2]::FLOAT[2] AS v')))).toEqual([[1, 2]]);
+  });
+});
+
+describe('what is refused', () => {
+  test.each([
+    [
+      'lists of other lengths',
+      'SELECT [1.0, 2] AS v UNION ALL SELECT [1.0]',
+      'expected 2 numbers in every row, as in the first, got 1 in row 1',
+    ],
+    [
+      'a number that is not there',
+      'SELECT [1.0, 2] AS v UNION ALL SELECT [1.0, NULL]',
+      'expected a number, got none in row 1 (from 0)',
+    ],
+    [
+      'a bin that is not there',
+      'SELECT 1.0 AS a UNION ALL SELECT NULL',
+      'column "a": expected a number, got none in row 1',
+    ],
+    ['a number that is none', "SELECT ['NaN'::FLOAT] AS v", 'got NaN at number 0 of frame 0'],
+    ['two lists', 'SELECT [1.0] AS a, [2.0] AS b', 'expected one column with a list of numbers'],
+    ['no numbers', "SELECT 'a' AS name", 'got "name VARCHAR"'],
+    ['no rows', 'SELECT 1.0 AS a WHERE false', 'expected frames, got no rows'],
+    [
+      'missing frames',
+      `SELECT ${START} + to_milliseconds(CASE WHEN i > 5 THEN 40 * i + 1000 ELSE 40 * i END) AS t, 1.0 AS a FROM range(10) r(i)`,
+      'cut it where frames are missing',
+    ],
+    ['times out of order', `SELECT ${START} + to_milliseconds(-40 * i) AS t, 1.0 AS a FROM range(10) r(i)`, 'in order'],
+  ])('%s', async (_, select, message) => {
+    const path = await written(select);
+    await expect(openParquetFrames(path).then(read)).rejects.toThrow(message);
+  });
+
+  test('row groups that would not fit', async () => {
+    const path = await written('SELECT range(2000)::FLOAT[] AS v FROM range(40)');
+    await expect(openParquetFrames(path, {}, 80_000)).rejects.toThrow(
+      'row groups of at most 10 frames, since a frame has 2000 numbers, got 40',
+    );
+  });
+
+  test('another file, and none', async () => {
+    const path = join(folder, 'text.parquet');
+    writeFileSync(path, 'not a table');
+    await expect(openParquetFrames(path)).rejects.toThrow(/text.parquet: expected a Parquet file, got/);
+    await expect(openParquetFrames(join(folder, 'none'))).rejects.toThrow('expected a file that can be read');
+  });
+});

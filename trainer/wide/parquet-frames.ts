@@ -1,0 +1,236 @@
+/**
+ * Frames from a Parquet file, one a row: a column that holds a list of numbers, or a column for each number. A column of
+ * timestamps says when they were taken. Streamed through DuckDB.
+ *
+ * DuckDB hands on up to 2,048 rows of a row group at once, so that a row group of long frames has to fit in memory; where it
+ * does not, that is said before anything is read.
+ */
+import { existsSync } from 'node:fs';
+import type { DuckDBConnection, DuckDBDataChunk, DuckDBFloatVector, DuckDBListVector } from '@duckdb/node-api';
+import { TrainError } from '../errors.ts';
+import { refusal, shown } from '../history/refusal.ts';
+import { checkFinite } from './finite-frames.ts';
+import type { FrameChunk, FrameSource, FrameTimes } from './frames.ts';
+
+/** Rows DuckDB hands on at once, at most. */
+const VECTOR_ROWS = 2048;
+/** Bytes of frames that may have to be held at once where nothing else is said. */
+const MOST_BYTES = 256 << 20;
+const NUMBERS = /^(U?(TINY|SMALL|BIG)INT|U?INTEGER|FLOAT|DOUBLE|DECIMAL.*)$/;
+const LISTS = /^(U?(TINY|SMALL|BIG)INT|U?INTEGER|FLOAT|DOUBLE|DECIMAL[^[]*)\[\d*\]$/;
+
+/** Columns by what they hold. */
+interface Columns {
+  readonly list: string | null;
+  readonly bins: readonly string[];
+  readonly time: string | null;
+}
+
+/**
+ * Opens a recording; TrainError 'file' where there is none, 'history' where it is no Parquet file, has no frames, or frames
+ * that are not alike.
+ *
+ * units  mostBytes of frames held at once
+ */
+export async function openParquetFrames(
+  path: string,
+  times: FrameTimes = {},
+  mostBytes = MOST_BYTES,
+): Promise<FrameSource> {
+  if (!existsSync(path))
+    throw new TrainError('file', `${path}: expected a file that can be read, got none by that name`);
+  return await asked(path, async (connection) => {
+    const columns = await columnsOf(connection, path);
+    const [count, rows] = (await one(
+      connection,
+      `SELECT (SELECT count(*) FROM read_parquet($1)),
+        (SELECT max(row_group_num_rows) FROM parquet_metadata($1))`,
+      path,
+    )) as [bigint, bigint];
+    if (Number(count) === 0) throw refusal({ file: path }, 'frames', 'no rows', 'check how it was written');
+    const frameLength = columns.list === null ? columns.bins.length : await lengthOf(connection, path, columns.list);
+    const most = Math.max(1, Math.floor(mostBytes / (4 * frameLength)));
+    if (Math.min(VECTOR_ROWS, Number(rows)) > most)
+      throw refusal(
+        { file: path },
+        `row groups of at most ${most} frames, since a frame has ${frameLength} numbers`,
+        `${rows}`,
+        'write it with smaller row groups, or as .npy',
+      );
+    const taken = columns.time === null ? null : await timesOf(connection, path, columns.time, Number(count));
+    return {
+      name: path,
+      frameLength,
+      count: Number(count),
+      startMs: taken?.startMs ?? times.startMs ?? null,
+      tickMs: taken?.tickMs ?? times.tickMs ?? null,
+      chunks: () => readChunks(path, columns, frameLength),
+    };
+  });
+}
+
+async function columnsOf(connection: DuckDBConnection, path: string): Promise<Columns> {
+  const reader = await connection.runAndReadAll(
+    'SELECT column_name, column_type FROM (DESCRIBE SELECT * FROM read_parquet($1))',
+    [path],
+  );
+  const all = reader.getRows() as [string, string][];
+  const named = (kind: RegExp): string[] => all.filter(([, type]) => kind.test(type)).map(([name]) => name);
+  const [lists, bins, stamps] = [named(LISTS), named(NUMBERS), named(/^TIMESTAMP/)];
+  const found = all.map(([name, type]) => `${name} ${type}`).join(', ');
+  if (lists.length > 1 || stamps.length > 1 || (lists.length === 0 && bins.length === 0))
+    throw refusal(
+      { file: path },
+      'one column with a list of numbers, or columns of numbers, and at most one of timestamps',
+      shown(found),
+      'write the columns of the frames alone',
+    );
+  return { list: lists[0] ?? null, bins: lists.length === 1 ? [] : bins, time: stamps[0] ?? null };
+}
+
+async function lengthOf(connection: DuckDBConnection, path: string, list: string): Promise<number> {
+  const [length] = await one(connection, `SELECT len(${quoted(list)}) FROM read_parquet($1) LIMIT 1`, path);
+  if (length === null || Number(length) === 0)
+    throw refusal({ file: path, field: list }, 'a list of numbers in the first row', 'none', 'leave empty rows out');
+  return Number(length);
+}
+
+/** Start and tick; refused where frames do not come evenly, which no window would notice. */
+async function timesOf(
+  connection: DuckDBConnection,
+  path: string,
+  time: string,
+  count: number,
+): Promise<{ startMs: number; tickMs: number | null }> {
+  const [start, end, least, most, none] = (
+    await one(
+      connection,
+      `SELECT min(t), max(t), min(step), max(step), count(*) FILTER (t IS NULL)
+       FROM (SELECT t, t - lag(t) OVER (ORDER BY n) AS step FROM (
+         SELECT epoch_us(${quoted(time)}) AS t, file_row_number AS n FROM read_parquet($1, file_row_number = true)))`,
+      path,
+    )
+  ).map((value) => Number(value) / 1000);
+  if (none > 0)
+    throw refusal({ file: path, field: time }, 'a time in every row', 'none in some', 'leave those rows out');
+  if (count === 1) return { startMs: start, tickMs: null };
+  const tickMs = (end - start) / (count - 1);
+  if (least <= 0 || least < 0.5 * tickMs || most > 1.5 * tickMs)
+    throw refusal(
+      { file: path, field: time },
+      `frames some ${tickMs} ms apart, in order`,
+      `steps from ${least} to ${most} ms`,
+      'sort it, and cut it where frames are missing',
+    );
+  return { startMs: start, tickMs };
+}
+
+async function* readChunks(path: string, columns: Columns, frameLength: number): AsyncGenerator<FrameChunk> {
+  const { list, bins } = columns;
+  const wanted = list === null ? bins.map((name) => `${quoted(name)}::FLOAT`) : [`${quoted(list)}::FLOAT[]`];
+  const instance = await openDatabase();
+  const connection = await instance.connect();
+  try {
+    const result = await connection.stream(`SELECT ${wanted.join(', ')} FROM read_parquet($1)`, [path]);
+    let values = new Float32Array(0);
+    for (let frame = 0; ; ) {
+      const chunk = await result.fetchChunk();
+      if (chunk === null || chunk.rowCount === 0) return;
+      const numbers = chunk.rowCount * frameLength;
+      if (values.length < numbers) values = new Float32Array(numbers);
+      if (list === null) takeBins(path, bins, chunk, values, frame);
+      else takeLists(path, list, chunk, values, frameLength, frame);
+      checkFinite(path, values.subarray(0, numbers), numbers, frameLength, frame);
+      yield { count: chunk.rowCount, values };
+      frame += chunk.rowCount;
+    }
+  } catch (cause) {
+    throw asRefusal(path, cause);
+  } finally {
+    connection.closeSync();
+    instance.closeSync();
+  }
+}
+
+function takeBins(
+  path: string,
+  bins: readonly string[],
+  chunk: DuckDBDataChunk,
+  out: Float32Array,
+  frame: number,
+): void {
+  bins.forEach((name, k) => {
+    const vector = chunk.getColumnVector(k) as DuckDBFloatVector;
+    for (let row = 0; row < chunk.rowCount; row++) {
+      const value = vector.getItem(row);
+      if (value === null) throw missing(path, name, frame + row);
+      out[row * bins.length + k] = value;
+    }
+  });
+}
+
+function takeLists(
+  path: string,
+  list: string,
+  chunk: DuckDBDataChunk,
+  out: Float32Array,
+  frameLength: number,
+  frame: number,
+): void {
+  const vector = chunk.getColumnVector(0) as DuckDBListVector;
+  for (let row = 0; row < chunk.rowCount; row++) {
+    const numbers = vector.getItemVector(row) as DuckDBFloatVector | null;
+    const length = numbers?.itemCount ?? 0;
+    if (numbers === null || length !== frameLength)
+      throw refusal(
+        { file: path, field: list },
+        `${frameLength} numbers in every row, as in the first`,
+        `${length} in row ${frame + row} (from 0)`,
+        'leave such rows out',
+      );
+    for (let k = 0; k < length; k++) {
+      const value = numbers.getItem(k);
+      if (value === null) throw missing(path, list, frame + row);
+      out[row * frameLength + k] = value;
+    }
+  }
+}
+
+function missing(path: string, field: string, row: number): Error {
+  return refusal({ file: path, field }, 'a number', `none in row ${row} (from 0)`, 'fill it, or leave the row out');
+}
+
+async function openDatabase(): Promise<import('@duckdb/node-api').DuckDBInstance> {
+  // Only who has such a file pays for the library.
+  const { DuckDBInstance } = await import('@duckdb/node-api');
+  return await DuckDBInstance.create(':memory:', { threads: '1' });
+}
+
+async function asked<T>(path: string, work: (connection: DuckDBConnection) => Promise<T>): Promise<T> {
+  const instance = await openDatabase();
+  const connection = await instance.connect();
+  try {
+    return await work(connection);
+  } catch (cause) {
+    throw asRefusal(path, cause);
+  } finally {
+    connection.closeSync();
+    instance.closeSync();
+  }
+}
+
+async function one(connection: DuckDBConnection, sql: string, path: string): Promise<unknown[]> {
+  return (await connection.runAndReadAll(sql, [path])).getRows()[0] as unknown[];
+}
+
+function asRefusal(path: string, cause: unknown): unknown {
+  if (cause instanceof TrainError) return cause;
+  const got = (cause as Error).message.split('\n')[0];
+  return refusal({ file: path }, 'a Parquet file', shown(got), 'check how it was written, or fetch it again', {
+    cause,
+  });
+}
+
+function quoted(name: string): string {
+  return `"${name.replaceAll('"', '""')}"`;
+}
