@@ -8,6 +8,8 @@ export interface Ran {
   readonly seconds: number;
   readonly cpuSeconds: number;
   readonly peakMb: number;
+  /** Seconds since the start and megabytes held then, every few milliseconds. */
+  readonly held: readonly (readonly [number, number])[];
   readonly stdout: string;
 }
 
@@ -43,8 +45,12 @@ export function measure(command: readonly string[]): Promise<Ran> {
     const [program, ...words] = command;
     const child = spawn(program!, words, { stdio: ['ignore', 'pipe', 'pipe'] });
     let seen = { peakMb: 0, cpuSeconds: 0 };
+    const held: (readonly [number, number])[] = [];
     const look = setInterval(() => {
-      seen = usage(child.pid) ?? seen;
+      const now = usage(child.pid);
+      if (now === null) return;
+      seen = { peakMb: now.peakMb, cpuSeconds: now.cpuSeconds };
+      held.push([(performance.now() - started) / 1000, now.heldMb]);
     }, LOOK_MS);
     const limit = setTimeout(() => child.kill('SIGKILL'), MOST_SECONDS * 1000);
     const out: Buffer[] = [];
@@ -64,7 +70,7 @@ export function measure(command: readonly string[]): Promise<Ran> {
     child.on('close', (code, signal) => {
       end();
       const seconds = (performance.now() - started) / 1000;
-      if (code === 0) resolve({ seconds, ...seen, stdout: Buffer.concat(out).toString('utf8') });
+      if (code === 0) resolve({ seconds, ...seen, held, stdout: Buffer.concat(out).toString('utf8') });
       else reject(new FailedRun(`${command.join(' ')}: ended with ${code ?? signal}: ${lastOf(error)}`));
     });
   });
@@ -74,14 +80,18 @@ function lastOf(error: string): string {
   return error.trim().replaceAll(/\s+/g, ' ').slice(-KEPT_ERROR);
 }
 
-/** VmHWM of status, utime and stime of stat, proc(5); null where the process is gone. */
-function usage(pid: number | undefined): { peakMb: number; cpuSeconds: number } | null {
+/** VmHWM and VmRSS of status, utime and stime of stat, proc(5); null where the process is gone. */
+function usage(pid: number | undefined): { peakMb: number; heldMb: number; cpuSeconds: number } | null {
   try {
-    const kib = /^VmHWM:\s+(\d+) kB/m.exec(readFileSync(`/proc/${pid}/status`, 'utf8'))?.[1];
+    const status = readFileSync(`/proc/${pid}/status`, 'utf8');
+    const megabytes = (field: string): number =>
+      (Number(new RegExp(`^${field}:\\s+(\\d+) kB`, 'm').exec(status)?.[1]) * 1024) / 1e6;
     const stat = readFileSync(`/proc/${pid}/stat`, 'utf8');
     const fields = stat.slice(stat.lastIndexOf(')') + 2).split(' ');
-    if (kib === undefined) return null;
-    return { peakMb: (Number(kib) * 1024) / 1e6, cpuSeconds: (Number(fields[11]) + Number(fields[12])) / CLOCK_TICKS };
+    const peakMb = megabytes('VmHWM');
+    if (Number.isNaN(peakMb)) return null;
+    const cpuSeconds = (Number(fields[11]) + Number(fields[12])) / CLOCK_TICKS;
+    return { peakMb, heldMb: megabytes('VmRSS'), cpuSeconds };
   } catch {
     return null;
   }

@@ -34,6 +34,7 @@ export interface Sealed {
   readonly cpuSeconds: number;
   /** Of the fit, which is the larger of the two. */
   readonly peakMb: number;
+  readonly fitted: Ran;
   readonly said: SaidOfFit;
   /** Folder of the fit and its bundle. */
   readonly out: string;
@@ -79,6 +80,7 @@ export async function fitAndSeal(workshop: Workshop, history: readonly string[],
     seconds: fitted.seconds + sealed.seconds,
     cpuSeconds: fitted.cpuSeconds + sealed.cpuSeconds,
     peakMb: Math.max(fitted.peakMb, sealed.peakMb),
+    fitted,
     said: JSON.parse(fitted.stdout) as SaidOfFit,
     out,
     bundle,
@@ -90,10 +92,25 @@ function seal({ key }: Workshop, out: string, bundle: string): Promise<Ran> {
   return measure([STILLWELL, 'seal', ...words, '--override', 'a bench, whatever its skill']);
 }
 
-/** Time of a fit by step, in a line. */
-export function stepsOf({ seconds, cpuSeconds, peakMb, said }: Sealed): string {
-  const laps = Object.entries(said.timings_ms).map(([step, ms]) => `${step} ${Math.round(ms)}`);
-  const known = Object.values(said.timings_ms).reduce((sum, ms) => sum + ms, 0);
-  const rest = Math.round(1000 * seconds - known);
-  return `by step, ms: ${laps.join(', ')}, all else (start, reading where not named, writing, sealing) ${rest}; processor ${cpuSeconds.toFixed(1)} s, peak ${peakMb.toFixed(0)} MB`;
+/** Time of a fit by step and the most memory held meanwhile, in a line. */
+export function stepsOf({ seconds, cpuSeconds, peakMb, fitted, said }: Sealed): string {
+  const laps = Object.entries(said.timings_ms);
+  const known = laps.reduce((sum, [, ms]) => sum + ms / 1000, 0);
+  // Steps follow each other and the last one ends as the program does.
+  let from = fitted.seconds - known;
+  const before = `start and reading ${step(fitted, 0, from)}`;
+  const steps = laps.map(([name, ms]) => {
+    const to = from + ms / 1000;
+    const text = `${name} ${step(fitted, from, to)}`;
+    from = to;
+    return text;
+  });
+  const whole = `${seconds.toFixed(2)} s, processor ${cpuSeconds.toFixed(2)} s, peak ${peakMb.toFixed(0)} MB`;
+  return `${whole}: ${[before, ...steps].join('; ')}; sealing ${(seconds - fitted.seconds).toFixed(2)} s`;
+}
+
+function step({ held }: Ran, from: number, to: number): string {
+  const within = held.filter(([at]) => at >= from && at < to).map(([, megabytes]) => megabytes);
+  const most = within.length > 0 ? ` ${Math.max(...within).toFixed(0)} MB` : '';
+  return `${(to - from).toFixed(2)} s${most}`;
 }
