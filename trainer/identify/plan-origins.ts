@@ -101,7 +101,7 @@ export function gatherPlanOrigins(
         });
       }
     },
-    nothing,
+    { planner: nothing },
   );
   return out;
 }

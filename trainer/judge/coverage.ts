@@ -14,11 +14,29 @@ export class Coverage {
     this.#width = new Float64Array(cells);
   }
 
-  /** Adds one reading against its bounds; a reading on a bound is inside. */
-  add(cell: number, reading: number, lower: number, upper: number): void {
-    this.#count[cell]++;
-    this.#width[cell] += upper - lower;
-    if (reading >= lower && reading <= upper) this.#inside[cell]++;
+  /**
+   * Adds a path's: bounds from `first` on, readings from `readings[from]` on, those that did not come left out; one on a bound
+   * is inside.
+   */
+  addPath(
+    first: number,
+    readings: Float64Array,
+    from: number,
+    lower: Float64Array,
+    upper: Float64Array,
+    steps: number,
+  ): void {
+    const count = this.#count;
+    const inside = this.#inside;
+    const width = this.#width;
+    for (let h = 0; h < steps; h++) {
+      const reading = readings[from + h];
+      if (Number.isNaN(reading)) continue;
+      const cell = first + h;
+      count[cell]++;
+      width[cell] += upper[cell] - lower[cell];
+      if (reading >= lower[cell] && reading <= upper[cell]) inside[cell]++;
+    }
   }
 
   /** Share inside; NaN where nothing was counted. */

@@ -25,7 +25,10 @@ export interface Hindcast {
   readonly units: readonly string[];
   readonly horizon: number;
   readonly tickMs: number;
-  /** Origins scored, none in excluded time: from the tick before the held-out part to the last with a whole horizon in it. */
+  /**
+   * Origins scored, none in excluded time: from the tick before the held-out part to the last with a whole horizon in it, or of
+   * very many every second, third and so on.
+   */
   readonly origins: number;
   readonly fromMs: number;
   readonly toMs: number;
@@ -50,7 +53,7 @@ export interface Hindcast {
   readonly paths: readonly HindcastPath[];
   /** (ny) of (ticks): the readings of the held-out part, first at fromMs. */
   readonly readings: readonly Float64Array[];
-  /** Every how many-th origin's losses are kept: 1, unless very many signals over a very long time would fill the memory. */
+  /** Every how many-th origin's losses are kept: 1, unless there are very many origins, or signals enough to fill the memory. */
   readonly lossEvery: number;
   /** (kept) label of each origin whose losses are kept. */
   readonly originMs: Float64Array;
@@ -128,7 +131,7 @@ export function hindcast(model: Model, series: Series, span: HindcastSpan, units
       const isAsked = (moment.at - from + 1) % every === 0 && series.excluded?.isExcluded[moment.at] !== 1;
       if (isAsked) crossings.visit(moment);
     },
-    planner,
+    { planner, wantsBounds: (at) => tally.wantsBounds(at) },
   );
   const isDeclared = limits.length > 0;
   const reliability = crossings.pairs.length > 0 ? reliabilityOf(crossings.pairs, asked.length, isDeclared) : null;

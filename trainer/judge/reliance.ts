@@ -6,6 +6,7 @@
 import type { Model } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
 import type { TickSpan } from '../span.ts';
+import { standingAt } from './replay.ts';
 import { signalErrors } from './replay-scores.ts';
 
 /** What losing a channel costs. */
@@ -32,7 +33,7 @@ const MOST_CHANNELS = 32;
  * units   ratios
  * throws  FilterError if the model does not fit the series
  * source  own choice; in the manner of leaving one predictor out (Breiman, Machine Learning 45, 2001, section 10)
- * cost    nc + 1 replays of a few thousand ticks at most
+ * cost    one warm-up, and nc + 1 replays of a few thousand ticks at most
  */
 export function reliance(model: Model, series: Series, span: TickSpan): Reliance | null {
   const { channelCount: nc, signalCount: ny, horizon: H } = model;
@@ -42,10 +43,12 @@ export function reliance(model: Model, series: Series, span: TickSpan): Reliance
   const ticks = Math.min(room, Math.max(LEAST_HORIZONS * H, Math.floor(MOST_STEPS / (nc + 1))));
   if (ticks < LEAST_HORIZONS * H) return null;
   const judged = { fromTick: span.toTick - ticks, toTick: span.toTick };
-  const whole = signalErrors(model, series, judged);
+  const silentFrom = judged.fromTick - silence;
+  const standing = standingAt(model, series, { ...judged, fromTick: judged.fromTick - 1 }, silentFrom);
+  const whole = signalErrors(model, series, judged, { standing });
   const ratio = new Float64Array(ny * nc);
   for (let c = 0; c < nc; c++) {
-    const without = signalErrors(model, series, judged, { seen: silenced(series, c, judged.fromTick - silence) });
+    const without = signalErrors(model, series, judged, { seen: silenced(series, c, silentFrom), standing });
     for (let i = 0; i < ny; i++) ratio[i * nc + c] = whole[i] > 0 ? without[i] / whole[i] : Number.NaN;
   }
   return { channels: series.names, ratio, origins: ticks - H + 1 };

@@ -6,7 +6,7 @@ import type { Model } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
 import type { TickSpan } from '../span.ts';
 import type { Planner } from './plan-trial.ts';
-import { type PathMoment, replayPaths } from './replay.ts';
+import { type PathMoment, replayPaths, type Standing } from './replay.ts';
 import { meanOf, Scores } from './scores.ts';
 
 /** What may be otherwise. */
@@ -17,6 +17,8 @@ export interface ReplayChoice {
   readonly planner?: Planner | null;
   /** Every so many origins are scored; all by default. */
   readonly every?: number;
+  /** Where the filter goes on from, in place of warming up. */
+  readonly standing?: Standing | undefined;
 }
 
 /**
@@ -71,23 +73,34 @@ export function replayMse(
   model: Model,
   series: Series,
   span: TickSpan,
-  { seen = series, planner = null, every = 1 }: ReplayChoice = {},
+  { seen = series, planner = null, every = 1, standing }: ReplayChoice = {},
 ): Float64Array {
-  const { signalCount: ny, horizon: H, clipLow, clipHigh, scale } = model;
+  const { signalCount: ny, horizon: H, scale } = model;
   const visited = { fromTick: span.fromTick - 1, toTick: span.toTick - H };
   const isExcluded = series.excluded?.isExcluded;
   const scores = new Scores(ny * H);
+  const truth = truthOf(model, series, visited.fromTick, span.toTick);
+  const errors = new Float64Array(H);
   const score = ({ at, median }: PathMoment): void => {
-    if ((at - visited.fromTick) % every !== 0 || isExcluded?.[at] === 1) return;
+    if (isExcluded?.[at] === 1) return;
     for (let i = 0; i < ny; i++) {
-      for (let h = 1; h <= H; h++) {
-        const reading = series.values[i][at + h];
-        if (Number.isNaN(reading) || isExcluded?.[at + h] === 1) continue;
-        const clipped = Math.min(clipHigh[i], Math.max(clipLow[i], reading));
-        scores.add(i * H + h - 1, (median[i * H + h - 1] - clipped) / scale[i]);
-      }
+      const from = at + 1 - visited.fromTick;
+      for (let h = 0; h < H; h++) errors[h] = (median[i * H + h] - truth[i][from + h]) / scale[i];
+      scores.addErrors(i * H, errors);
     }
   };
-  replayPaths(model, seen, visited, score, planner);
+  replayPaths(model, seen, visited, score, { planner, every, standing });
   return scores.mse();
+}
+
+/** (ny) readings of the part clipped as the filter takes them, NaN where missing or excluded; from an index before 0 on too. */
+function truthOf({ clipLow, clipHigh, signalCount }: Model, series: Series, from: number, to: number): Float64Array[] {
+  const isExcluded = series.excluded?.isExcluded;
+  return Array.from({ length: signalCount }, (_, i) => {
+    const out = new Float64Array(to - from).fill(Number.NaN);
+    for (let t = Math.max(0, from); t < to; t++) {
+      if (isExcluded?.[t] !== 1) out[t - from] = Math.min(clipHigh[i], Math.max(clipLow[i], series.values[i][t]));
+    }
+    return out;
+  });
 }

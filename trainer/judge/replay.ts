@@ -35,11 +35,19 @@ export interface Moment extends PathMoment {
   readonly upper: Float64Array;
 }
 
+/** What a replay with bounds may be asked beside its paths. */
+export interface ReplayOptions {
+  /** Null: nothing is planned. */
+  readonly planner?: Planner | null;
+  /** At which indices `lower` and `upper` are worked out; at the others they are left as they were. All by default. */
+  readonly wantsBounds?: (at: number) => boolean;
+}
+
 /**
  * Replays with tracked bounds.
  *
  * shapes  span of indices into the series whose ticks are visited; the filter and its bounds are warmed up on the
- *         ticks before it until the start no longer shows, as far as the series goes back; planner null: nothing planned
+ *         ticks before it until the start no longer shows, as far as the series goes back
  * units   the signals'
  * throws  FilterError if the model does not fit the series
  */
@@ -48,17 +56,33 @@ export function replay(
   series: Series,
   span: TickSpan,
   visit: (moment: Moment) => void,
-  planner: Planner | null = null,
+  { planner = null, wantsBounds = () => true }: ReplayOptions = {},
 ): void {
   const bounds: Bounds = createBounds(model);
   const lower = new Float64Array(model.signalCount * model.horizon);
   const upper = new Float64Array(lower.length);
-  run(model, series, span, Number.NEGATIVE_INFINITY, planner, (at, state, median) => {
+  run(model, series, span, { planner, isVisited: () => true }, (at, state, median) => {
     trackBounds(model, bounds, state, median);
     if (at < span.fromTick) return;
-    intervalOf(model, bounds, state, median, lower, upper);
+    if (wantsBounds(at)) intervalOf(model, bounds, state, median, lower, upper);
     visit({ at, state, median, bounds, lower, upper });
   });
+}
+
+/** What a replay of paths may be asked. */
+export interface PathOptions {
+  /** Null: nothing is planned. */
+  readonly planner?: Planner | null;
+  /** Every so many indices are visited, the first of the span first; 1 by default. Paths of the others are not worked out. */
+  readonly every?: number;
+  /** From where it goes on, in place of warming up once more. */
+  readonly standing?: Standing | undefined;
+}
+
+/** A filter warmed up, as it stands before the tick at an index. It is copied, never moved on, by those who start from it. */
+export interface Standing {
+  readonly at: number;
+  readonly state: FilterState;
 }
 
 /**
@@ -73,31 +97,62 @@ export function replayPaths(
   series: Series,
   span: TickSpan,
   visit: (moment: PathMoment) => void,
-  planner: Planner | null = null,
+  { planner = null, every = 1, standing }: PathOptions = {},
 ): void {
-  run(model, series, span, span.fromTick, planner, (at, state, median) => {
-    if (at >= span.fromTick) visit({ at, state, median });
-  });
+  const isVisited = (at: number): boolean => at >= span.fromTick && (every === 1 || (at - span.fromTick) % every === 0);
+  const each = (at: number, state: FilterState, median: Float64Array): void => {
+    if (isVisited(at)) visit({ at, state, median });
+  };
+  run(model, series, span, { planner, isVisited, standing }, each);
 }
 
-/** Every tick from the start of the warm-up; paths from tick `pathsFrom` on. */
+/**
+ * The filter as a replay of the span would have it before the tick at index `at`: where several replays that differ only from
+ * there on begin.
+ *
+ * shapes  at no later than the span's start
+ * units   none
+ * throws  as `replay`
+ */
+export function standingAt(model: Model, series: Series, span: TickSpan, at: number): Standing {
+  const state = createState(model);
+  const readings = new Float64Array(model.channelCount);
+  for (let t = startOf(model, span); t < at; t++) take(model, state, series, t, readings);
+  return { at: Math.max(at, startOf(model, span)), state };
+}
+
+/** First index of the warm-up: from where the filter's start no longer shows at the span's. */
+function startOf(model: Model, span: TickSpan): number {
+  return Math.max(0, span.fromTick - Math.max(model.warmupTicks, settlingTicksOf(model)));
+}
+
+function take(model: Model, state: FilterState, series: Series, at: number, readings: Float64Array): void {
+  for (let c = 0; c < readings.length; c++) readings[c] = series.values[c][at];
+  update(model, state, series.firstTick + at, readings);
+}
+
+/** Every tick from the start of the warm-up; paths where they are visited. */
 function run(
   model: Model,
   series: Series,
   span: TickSpan,
-  pathsFrom: number,
-  planner: Planner | null,
+  {
+    planner,
+    isVisited,
+    standing,
+  }: Pick<PathOptions, 'standing'> & {
+    readonly planner: Planner | null;
+    readonly isVisited: (at: number) => boolean;
+  },
   each: (at: number, state: FilterState, median: Float64Array) => void,
 ): void {
-  const state = createState(model);
+  const state = standing === undefined ? createState(model) : structuredClone(standing.state);
   const median = new Float64Array(model.signalCount * model.horizon);
   const readings = new Float64Array(model.channelCount);
   const plan = new Float64Array((model.channelCount - model.signalCount) * model.horizon);
-  const warm = Math.max(model.warmupTicks, settlingTicksOf(model));
-  for (let at = Math.max(0, span.fromTick - warm); at < span.toTick; at++) {
-    for (let c = 0; c < readings.length; c++) readings[c] = series.values[c][at];
-    update(model, state, series.firstTick + at, readings);
-    if (at >= pathsFrom) {
+  for (let at = standing?.at ?? startOf(model, span); at < span.toTick; at++) {
+    take(model, state, series, at, readings);
+    if (isVisited(at)) {
       if (planner !== null) planner(at, plan);
       forecastPath(model, state, median, planner === null ? null : plan);
     }

@@ -3,7 +3,7 @@
  * origin, a missing one replaced by the last before it. What they learn, they learn from the learning part alone.
  */
 import type { TickSpan } from '../span.ts';
-import { fitWindowRidge } from './window-ridge.ts';
+import { fitWindowRidge, forecastWindow } from './window-ridge.ts';
 
 const DAY_MS = 86_400_000;
 const CALENDAR = [
@@ -128,14 +128,7 @@ function windowRidge(input: RivalInput, learn: TickSpan): Rival | null {
       const y = carried[signal];
       const map = maps[signal];
       if (map === null) return;
-      const lags = map.lags;
-      out.fill(y[at]);
-      for (let k = 1; k <= lags; k++) {
-        const away = y[Math.max(0, at - k)] - y[at];
-        if (away === 0) continue;
-        const row = (k - 1) * horizon;
-        for (let h = 0; h < out.length; h++) out[h] += away * map.weights[row + h];
-      }
+      forecastWindow(map, horizon, y, at, out);
     },
   };
 }

@@ -25,6 +25,37 @@ export class Scores {
     this.#sum[cell] += error;
   }
 
+  /** Adds the errors of a path, NaN where no reading came, from cell `first` on. */
+  addErrors(first: number, errors: Float64Array): void {
+    for (let h = 0; h < errors.length; h++) if (!Number.isNaN(errors[h])) this.add(first + h, errors[h]);
+  }
+
+  /**
+   * Adds the errors of a path of `steps` forecasts, first at `path[at]` and its reading at `readings[from]`, from cell `first`
+   * on; gives their mean square, NaN where no reading came.
+   */
+  addPath(first: number, path: Float64Array, at: number, readings: Float64Array, from: number, steps: number): number {
+    const count = this.count;
+    const squares = this.#squares;
+    const sizes = this.#sizes;
+    const sums = this.#sum;
+    let total = 0;
+    let read = 0;
+    for (let h = 0; h < steps; h++) {
+      const error = path[at + h] - readings[from + h];
+      if (Number.isNaN(error)) continue;
+      const cell = first + h;
+      const square = error * error;
+      count[cell]++;
+      squares[cell] += square;
+      sizes[cell] += Math.abs(error);
+      sums[cell] += error;
+      total += square;
+      read++;
+    }
+    return read > 0 ? total / read : Number.NaN;
+  }
+
   /** Mean squared error; NaN where nothing was counted. */
   mse(): Float64Array {
     return this.#squares.map((sum, cell) => sum / this.count[cell]);

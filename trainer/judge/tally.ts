@@ -7,6 +7,7 @@ import type { Series } from '../history/series.ts';
 import { joined } from '../linalg/joined.ts';
 import { Coverage } from './coverage.ts';
 import type { Hindcast, HindcastPath } from './hindcast.ts';
+import { scoreEvery } from './origin-budget.ts';
 import type { Moment } from './replay.ts';
 import type { Rival } from './rivals.ts';
 import { Scores } from './scores.ts';
@@ -40,8 +41,10 @@ export class Tally {
   readonly #path: Float64Array;
   readonly #every: number;
   readonly #paths: HindcastPath[] = [];
+  readonly #scoreEvery: number;
   #origins = 0;
-  readonly #lossEvery: number;
+  /** Of the origins scored, every so many are kept. */
+  readonly #keepEvery: number;
   readonly #originMs: number[] = [];
   /** (ny) and (rivals · ny) of (origins kept so far). */
   readonly #losses: readonly number[][];
@@ -67,10 +70,17 @@ export class Tally {
     this.#residuals = readings.map(() => new Float64Array(to - from).fill(Number.NaN));
     this.#next = new Float64Array(ny).fill(Number.NaN);
     this.#path = new Float64Array(horizon);
-    this.#lossEvery = Math.max(1, Math.ceil(((to - from) * ny * (rivals.length + 1)) / MOST_LOSSES));
+    this.#scoreEvery = scoreEvery(to - from - horizon + 1);
+    const losses = ((to - from) / this.#scoreEvery) * ny * (rivals.length + 1);
+    this.#keepEvery = Math.max(1, Math.ceil(losses / MOST_LOSSES));
     this.#losses = readings.map(() => []);
     this.#rivalLosses = rivals.flatMap(() => readings.map(() => []));
     this.#every = strideOfPaths(horizon, Math.floor((to - from - horizon + 1) / KEPT_PATHS));
+  }
+
+  /** Whether bounds are wanted at an index. */
+  wantsBounds(at: number): boolean {
+    return this.#isScored(at) || this.#isPlotted(at);
   }
 
   visit(moment: Moment, series: Series): void {
@@ -80,51 +90,36 @@ export class Tally {
       this.#next[i] = median[i * this.#horizon];
     }
     if (at + this.#horizon >= this.#to || series.excluded?.isExcluded[at] === 1) return;
-    const isKept = this.#origins++ % this.#lossEvery === 0;
-    if (isKept) this.#originMs.push((series.firstTick + at) * series.tickMs);
-    for (let i = 0; i < this.#ny; i++) this.#score(i, moment, isKept);
-    if ((at - this.#from + 1) % this.#every === 0) {
-      this.#paths.push({
-        originMs: (series.firstTick + at) * series.tickMs,
-        median: median.slice(),
-        lower: moment.lower.slice(),
-        upper: moment.upper.slice(),
-      });
-    }
+    const originMs = (series.firstTick + at) * series.tickMs;
+    if (this.#isScored(at)) this.#scoreAll(moment, originMs);
+    if (!this.#isPlotted(at)) return;
+    const { lower, upper } = moment;
+    this.#paths.push({ originMs, median: median.slice(), lower: lower.slice(), upper: upper.slice() });
   }
 
-  #score(signal: number, { at, median, lower, upper }: Moment, isKept: boolean): void {
-    const y = this.#readings[signal];
-    const H = this.#horizon;
-    for (let h = 1; h <= H; h++) {
-      const reading = y[at + h];
-      const cell = signal * H + h - 1;
-      if (!Number.isNaN(reading)) this.#coverage.add(cell, reading, lower[cell], upper[cell]);
-    }
-    const own = this.#addPath(this.#own, signal, at, median, signal * H);
-    if (isKept) this.#losses[signal].push(own);
-    this.#rivals.forEach((rival, r) => {
-      rival.forecast(signal, at, this.#path);
-      const loss = this.#addPath(this.#theirs[r], signal, at, this.#path, 0);
-      if (isKept) this.#rivalLosses[r * this.#ny + signal].push(loss);
-    });
+  #isScored(at: number): boolean {
+    return (at - this.#from + 1) % this.#scoreEvery === 0;
   }
 
-  /** Adds a path's errors and gives their mean square; NaN where no reading came. */
-  #addPath(scores: Scores, signal: number, at: number, path: Float64Array, first: number): number {
-    const y = this.#readings[signal];
+  #isPlotted(at: number): boolean {
+    return (at - this.#from + 1) % this.#every === 0;
+  }
+
+  #scoreAll({ at, median, lower, upper }: Moment, originMs: number): void {
+    const isKept = this.#origins++ % this.#keepEvery === 0;
+    if (isKept) this.#originMs.push(originMs);
     const H = this.#horizon;
-    let sum = 0;
-    let count = 0;
-    for (let h = 1; h <= H; h++) {
-      const reading = y[at + h];
-      if (Number.isNaN(reading)) continue;
-      const error = path[first + h - 1] - reading;
-      scores.add(signal * H + h - 1, error);
-      sum += error * error;
-      count++;
+    for (let i = 0; i < this.#ny; i++) {
+      const y = this.#readings[i];
+      this.#coverage.addPath(i * H, y, at + 1, lower, upper, H);
+      const own = this.#own.addPath(i * H, median, i * H, y, at + 1, H);
+      if (isKept) this.#losses[i].push(own);
+      for (let r = 0; r < this.#rivals.length; r++) {
+        this.#rivals[r].forecast(i, at, this.#path);
+        const loss = this.#theirs[r].addPath(i * H, this.#path, 0, y, at + 1, H);
+        if (isKept) this.#rivalLosses[r * this.#ny + i].push(loss);
+      }
     }
-    return count > 0 ? sum / count : Number.NaN;
   }
 
   result(model: Model, series: Series, units: readonly string[]): Omit<Hindcast, 'reliability'> {
@@ -156,7 +151,7 @@ export class Tally {
       residuals: this.#residuals,
       paths: this.#paths,
       readings: this.#readings.map((y) => y.slice(this.#from, this.#to)),
-      lossEvery: this.#lossEvery,
+      lossEvery: this.#scoreEvery * this.#keepEvery,
       originMs: Float64Array.from(this.#originMs),
       pathLoss: this.#losses.map((losses) => Float64Array.from(losses)),
       rivalPathLoss: this.#rivalLosses.map((losses) => Float64Array.from(losses)),

@@ -48,6 +48,42 @@ export function fitWindowRidge(y: Float64Array, horizon: number, periodTicks: nu
   return { lags, weights: solve(both, lags, horizon, chosen) };
 }
 
+/**
+ * Forecasts from an origin; what lies before the series counts as its first reading.
+ *
+ * shapes  y (ticks) complete; out (horizon)
+ * units   the signal's
+ * throws  nothing
+ * source  as the map
+ * cost    O(lags horizon); four lags at a time, added one after another
+ */
+export function forecastWindow(
+  { lags, weights }: WindowRidge,
+  horizon: number,
+  y: Float64Array,
+  at: number,
+  out: Float64Array,
+): void {
+  const now = y[at];
+  out.fill(now);
+  const away = (lag: number): number => y[Math.max(0, at - lag)] - now;
+  let k = 1;
+  for (; k + 3 <= lags; k += 4) {
+    const [f0, f1, f2, f3] = [away(k), away(k + 1), away(k + 2), away(k + 3)];
+    const r0 = (k - 1) * horizon;
+    const r1 = r0 + horizon;
+    const r2 = r1 + horizon;
+    const r3 = r2 + horizon;
+    for (let h = 0; h < horizon; h++) {
+      out[h] = out[h] + f0 * weights[r0 + h] + f1 * weights[r1 + h] + f2 * weights[r2 + h] + f3 * weights[r3 + h];
+    }
+  }
+  for (; k <= lags; k++) {
+    const far = away(k);
+    for (let h = 0; h < horizon; h++) out[h] += far * weights[(k - 1) * horizon + h];
+  }
+}
+
 interface WindowMoments {
   /** (lags × lags) */
   readonly gram: Float64Array;
@@ -61,11 +97,10 @@ function windowMoments(y: Float64Array, lags: number, horizon: number, from: num
   const raw = new Float64Array(size * size);
   // Row u stands for y(t + horizon - u): 0 the furthest future, `horizon` the origin. Moving both places one tick back
   // changes the sum by its two ends alone.
+  const lagged = laggedProducts(y, from + horizon, to + horizon, size);
   for (let v = 0; v < size; v++) {
-    let sum = 0;
-    for (let t = from; t < to; t++) sum += y[t + horizon] * y[t + horizon - v];
-    raw[v] = sum;
-    raw[v * size] = sum;
+    raw[v] = lagged[v];
+    raw[v * size] = lagged[v];
   }
   for (let u = 1; u < size; u++) {
     for (let v = u; v < size; v++) {
@@ -84,6 +119,31 @@ function windowMoments(y: Float64Array, lags: number, horizon: number, from: num
     for (let h = 1; h <= horizon; h++) cross[a * horizon + h - 1] = at(horizon + 1 + a, horizon - h);
   }
   return { gram, cross };
+}
+
+/** (count) Σ y(t) y(t - v) over from <= t < to for v = 0 … count - 1, four distances at a time, each sum in order of t. */
+function laggedProducts(y: Float64Array, from: number, to: number, count: number): Float64Array {
+  const out = new Float64Array(count);
+  let v = 0;
+  for (; v + 3 < count; v += 4) {
+    let s0 = 0;
+    let s1 = 0;
+    let s2 = 0;
+    let s3 = 0;
+    for (let t = from; t < to; t++) {
+      const now = y[t];
+      s0 += now * y[t - v];
+      s1 += now * y[t - v - 1];
+      s2 += now * y[t - v - 2];
+      s3 += now * y[t - v - 3];
+    }
+    out[v] = s0;
+    out[v + 1] = s1;
+    out[v + 2] = s2;
+    out[v + 3] = s3;
+  }
+  for (; v < count; v++) for (let t = from; t < to; t++) out[v] += y[t] * y[t - v];
+  return out;
 }
 
 function solve(moments: WindowMoments, lags: number, horizon: number, penalty: number): Float64Array {

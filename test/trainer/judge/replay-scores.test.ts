@@ -1,6 +1,7 @@
 /** Scores of replays: by a slow second route, and deaf to excluded time. */
 import { createState, forecastPath, update } from '@stillwell/runtime/filter';
 import { describe, expect, test } from 'vitest';
+import { standingAt } from '../../../trainer/judge/replay.ts';
 import { replayMse, signalErrors } from '../../../trainer/judge/replay-scores.ts';
 import { seriesOf } from '../../support/history.ts';
 import { syntheticModel, syntheticReadings } from '../../support/models.ts';
@@ -50,5 +51,12 @@ describe('replayed scores', () => {
         9,
       );
     expect(signalErrors(model, excluded, span)[0]).not.toBe(signalErrors(model, series, span)[0]);
+  });
+
+  test('are the same to the bit from a filter that stands warmed up, however often it is started from', () => {
+    const standing = standingAt(model, series, { ...span, fromTick: span.fromTick - 1 }, 380);
+    const whole = replayMse(model, series, span);
+    for (const _ of ['once', 'again']) expect(replayMse(model, series, span, { standing })).toEqual(whole);
+    expect(standing.state.tick).toBe(series.firstTick + 379);
   });
 });

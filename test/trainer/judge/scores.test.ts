@@ -27,8 +27,11 @@ describe('skillScore', () => {
 describe('coverage', () => {
   it('counts a reading on the bound as inside', () => {
     const coverage = new Coverage(1);
-    coverage.add(0, 1, 1, 3);
-    coverage.add(0, 3.5, 1, 3);
+    const add = (reading: number): void =>
+      coverage.addPath(0, Float64Array.of(reading), 0, Float64Array.of(1), Float64Array.of(3), 1);
+    add(1);
+    add(3.5);
+    add(Number.NaN);
     expect(coverage.share()[0]).toBe(0.5);
     expect(coverage.width()[0]).toBe(2);
   });
