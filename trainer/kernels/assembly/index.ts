@@ -1,0 +1,6 @@
+/** What kernels.wasm offers; the same list as trainer/kernels/core.ts. */
+export * from './fourier';
+export * from './hadamard';
+export * from './products';
+export * from './triangular';
+export * from './vectors';

@@ -1,0 +1,114 @@
+/** Sums and products along vectors. Pointers are byte offsets, sizes are counted in elements. */
+
+/** Σ a b in eight lanes, folded pairwise; the last products, fewer than eight, are added in order. */
+export function dot64(a: usize, b: usize, n: i32): f64 {
+  let s0 = f64x2.splat(0);
+  let s1 = f64x2.splat(0);
+  let s2 = f64x2.splat(0);
+  let s3 = f64x2.splat(0);
+  let k = 0;
+  for (; k + 7 < n; k += 8, a += 64, b += 64) {
+    s0 = f64x2.add(s0, f64x2.mul(v128.load(a), v128.load(b)));
+    s1 = f64x2.add(s1, f64x2.mul(v128.load(a, 16), v128.load(b, 16)));
+    s2 = f64x2.add(s2, f64x2.mul(v128.load(a, 32), v128.load(b, 32)));
+    s3 = f64x2.add(s3, f64x2.mul(v128.load(a, 48), v128.load(b, 48)));
+  }
+  const s = f64x2.add(f64x2.add(s0, s1), f64x2.add(s2, s3));
+  let sum = f64x2.extract_lane(s, 0) + f64x2.extract_lane(s, 1);
+  for (; k < n; k++, a += 8, b += 8) sum += f64.load(a) * f64.load(b);
+  return sum;
+}
+
+/** y += f x. */
+export function axpy64(y: usize, f: f64, x: usize, n: i32): void {
+  const factor = f64x2.splat(f);
+  let k = 0;
+  for (; k + 3 < n; k += 4, y += 32, x += 32) {
+    v128.store(y, f64x2.add(v128.load(y), f64x2.mul(factor, v128.load(x))));
+    v128.store(y, f64x2.add(v128.load(y, 16), f64x2.mul(factor, v128.load(x, 16))), 16);
+  }
+  for (; k < n; k++, y += 8, x += 8) f64.store(y, f64.load(y) + f * f64.load(x));
+}
+
+/** x *= f. */
+export function scale64(x: usize, f: f64, n: i32): void {
+  const factor = f64x2.splat(f);
+  let k = 0;
+  for (; k + 1 < n; k += 2, x += 16) v128.store(x, f64x2.mul(v128.load(x), factor));
+  if (k < n) f64.store(x, f64.load(x) * f);
+}
+
+/** c += conj(a) b on spectra kept as real and imaginary parts. */
+export function spectraAdd64(
+  cr: usize,
+  ci: usize,
+  ar: usize,
+  ai: usize,
+  br: usize,
+  bi: usize,
+  n: i32,
+): void {
+  let k = 0;
+  let at: usize = 0;
+  for (; k + 1 < n; k += 2, at += 16) {
+    const xr = v128.load(ar + at);
+    const xi = v128.load(ai + at);
+    const yr = v128.load(br + at);
+    const yi = v128.load(bi + at);
+    const re = f64x2.add(f64x2.mul(xr, yr), f64x2.mul(xi, yi));
+    const im = f64x2.sub(f64x2.mul(xr, yi), f64x2.mul(xi, yr));
+    v128.store(cr + at, f64x2.add(v128.load(cr + at), re));
+    v128.store(ci + at, f64x2.add(v128.load(ci + at), im));
+  }
+  if (k < n) {
+    const xr = f64.load(ar + at);
+    const xi = f64.load(ai + at);
+    const yr = f64.load(br + at);
+    const yi = f64.load(bi + at);
+    f64.store(cr + at, f64.load(cr + at) + (xr * yr + xi * yi));
+    f64.store(ci + at, f64.load(ci + at) + (xr * yi - xi * yr));
+  }
+}
+
+/** x = f cos(x) on float32, in place; the arithmetic is told in trainer/kernels/cosines.ts. */
+export function cosines32(x: usize, f: f32, n: i32): void {
+  const end = x + (<usize>(n & ~3) << 2);
+  for (; x < end; x += 16) v128.store(x, cosines4(v128.load(x), f));
+  const left = n & 3;
+  if (left == 0) return;
+  let last = v128.load32_zero(x);
+  if (left > 1) last = v128.load_lane<f32>(x + 4, last, 1);
+  if (left > 2) last = v128.load_lane<f32>(x + 8, last, 2);
+  last = cosines4(last, f);
+  v128.store_lane<f32>(x, last, 0);
+  if (left > 1) v128.store_lane<f32>(x + 4, last, 1);
+  if (left > 2) v128.store_lane<f32>(x + 8, last, 2);
+}
+
+function cosines4(x: v128, f: f32): v128 {
+  const low = toSine(f64x2.promote_low_f32x4(x));
+  const high = toSine(f64x2.promote_low_f32x4(v128.shuffle<f64>(x, x, 1, 1)));
+  const r = v128.shuffle<f64>(f32x4.demote_f64x2_zero(low), f32x4.demote_f64x2_zero(high), 0, 2);
+  const u = f32x4.mul(r, r);
+  let p = f32x4.splat(SINE_9);
+  p = f32x4.add(f32x4.mul(p, u), f32x4.splat(SINE_7));
+  p = f32x4.add(f32x4.mul(p, u), f32x4.splat(SINE_5));
+  p = f32x4.add(f32x4.mul(p, u), f32x4.splat(SINE_3));
+  return f32x4.mul(f32x4.add(r, f32x4.mul(r, f32x4.mul(u, p))), f32x4.splat(f));
+}
+
+/** The angle in [-π/2, π/2] whose sine is the cosine of x: π/2 - |x less whole turns|. */
+function toSine(x: v128): v128 {
+  const t = f64x2.mul(x, f64x2.splat(TURNS));
+  const magic = f64x2.splat(ROUNDING);
+  const part = f64x2.sub(t, f64x2.sub(f64x2.add(t, magic), magic));
+  return f64x2.mul(f64x2.sub(f64x2.splat(0.25), f64x2.abs(part)), f64x2.splat(TWO_PI));
+}
+
+const TURNS: f64 = 0.15915494309189535;
+const TWO_PI: f64 = 6.283185307179586;
+const ROUNDING: f64 = 6755399441055744;
+const SINE_3: f32 = -0.16666656732559204;
+const SINE_5: f32 = 0.008333017118275166;
+const SINE_7: f32 = -0.00019806614727713168;
+const SINE_9: f32 = 2.6000548132287804e-6;

@@ -1,0 +1,58 @@
+/**
+ * The innermost loops, as kernels.wasm has them and as scalar-*.ts has them again: the same lanes and the same order of
+ * operations, so the same bits. All pointers are byte offsets into the one memory, strides and sizes are counted in
+ * elements. What each does is told in assembly/; blocking, checks and scratch are the callers' (products.ts,
+ * triangular.ts, orthogonal.ts, fourier.ts).
+ */
+
+/** Where a number lies: a byte offset into the memory. */
+export type Pointer = number;
+
+/** Packed panels and their products. */
+export interface ProductLoops {
+  pack64(to: Pointer, from: Pointer, rowStride: number, stepStride: number, rows: number, steps: number): void;
+  pack32(to: Pointer, from: Pointer, rowStride: number, stepStride: number, rows: number, steps: number): void;
+  panels(
+    c: Pointer,
+    stride: number,
+    a: Pointer,
+    b: Pointer,
+    rows: number,
+    columns: number,
+    steps: number,
+    skew: number,
+    isTaken: number,
+  ): void;
+}
+
+/** Small triangular blocks. */
+export interface TriangularLoops {
+  factorBlock(a: Pointer, stride: number, n: number): number;
+  lowerBlock(l: Pointer, lStride: number, b: Pointer, bStride: number, n: number, m: number): void;
+  upperBlock(l: Pointer, lStride: number, b: Pointer, bStride: number, n: number, m: number): void;
+  rightBlock(r: Pointer, rStride: number, a: Pointer, aStride: number, n: number, rows: number): void;
+}
+
+/** Passes of the Fourier transform. */
+export interface FourierLoops {
+  pass4(xr: Pointer, xi: Pointer, yr: Pointer, yi: Pointer, factors: Pointer, m: number, s: number): void;
+  pass2(xr: Pointer, xi: Pointer, yr: Pointer, yi: Pointer, s: number): void;
+  split(x: Pointer, re: Pointer, im: Pointer, n: number): void;
+  join(x: Pointer, re: Pointer, im: Pointer, factor: number, n: number): void;
+  untangle(re: Pointer, im: Pointer, factors: Pointer, n: number): void;
+  tangle(re: Pointer, im: Pointer, factors: Pointer, n: number): void;
+}
+
+/** Along one vector, or several of the same length. */
+export interface VectorLoops {
+  dot64(a: Pointer, b: Pointer, n: number): number;
+  axpy64(y: Pointer, factor: number, x: Pointer, n: number): void;
+  scale64(x: Pointer, factor: number, n: number): void;
+  spectraAdd64(cr: Pointer, ci: Pointer, ar: Pointer, ai: Pointer, br: Pointer, bi: Pointer, n: number): void;
+  cosines32(x: Pointer, factor: number, n: number): void;
+  hadamard64(x: Pointer, n: number): void;
+  hadamard32(x: Pointer, n: number): void;
+}
+
+/** All of them. */
+export type Core = ProductLoops & TriangularLoops & FourierLoops & VectorLoops;

@@ -1,0 +1,149 @@
+/**
+ * Fourier transforms of lengths that are powers of two: passes of radix 4 from one pair of buffers to the other and back,
+ * one of radix 2 at the end where the length asks for it. Transforms of real series go by one of half the length.
+ */
+import type { Arena } from './arena.ts';
+import type { FourierLoops, Pointer } from './core.ts';
+import { turn } from './turns.ts';
+
+interface Pass {
+  readonly m: number;
+  readonly s: number;
+  readonly factors: Pointer;
+}
+
+interface Plan {
+  readonly passes: readonly Pass[];
+  readonly endsByTwo: boolean;
+}
+
+/** The plans of one memory; each length's tables are made once and stay. */
+export class FourierPlans {
+  readonly #core: FourierLoops;
+  readonly #arena: Arena;
+  readonly #plans = new Map<number, Plan>();
+  readonly #turns = new Map<number, Pointer>();
+
+  constructor(core: FourierLoops, arena: Arena) {
+    this.#core = core;
+    this.#arena = arena;
+  }
+
+  /**
+   * X_k = Σ x_t exp(-2πi kt/n) in place.
+   *
+   * shapes  re, im (n), n a power of two
+   * units   as the input's
+   * throws  RangeError where n is no power of two or the memory is full (scratch 16 n bytes, tables 16 n bytes once)
+   * source  Van Loan, Computational Frameworks for the Fast Fourier Transform (1992), section 1.7
+   * cost    4.25 n log2 n operations
+   */
+  transform(re: Pointer, im: Pointer, n: number): void {
+    if (n === 1) return;
+    const plan = this.#plan(n);
+    const core = this.#core;
+    const mark = this.#arena.mark();
+    let [xr, xi, yr, yi] = [re, im, this.#arena.takeRaw(8 * n), this.#arena.takeRaw(8 * n)];
+    for (const { m, s, factors } of plan.passes) {
+      core.pass4(xr, xi, yr, yi, factors, m, s);
+      [xr, xi, yr, yi] = [yr, yi, xr, xi];
+    }
+    if (plan.endsByTwo) {
+      core.pass2(xr, xi, yr, yi, n / 2);
+      [xr, xi, yr, yi] = [yr, yi, xr, xi];
+    }
+    if (xr !== re) {
+      const bytes = new Uint8Array(this.#arena.buffer);
+      bytes.copyWithin(re, xr, xr + 8 * n);
+      bytes.copyWithin(im, xi, xi + 8 * n);
+    }
+    this.#arena.release(mark);
+  }
+
+  /**
+   * The first n/2 + 1 values of the transform of n real ones; x is kept.
+   *
+   * shapes  x (n), re, im (n/2 + 1), n a power of two
+   * units   as the input's
+   * throws  as `transform`
+   * source  Press et al., Numerical Recipes, 3rd ed. (2007), section 12.3.2
+   * cost    half a transform of n
+   */
+  real(x: Pointer, re: Pointer, im: Pointer, n: number): void {
+    if (n === 1) {
+      new Float64Array(this.#arena.buffer, re, 1)[0] = new Float64Array(this.#arena.buffer, x, 1)[0];
+      new Float64Array(this.#arena.buffer, im, 1)[0] = 0;
+      return;
+    }
+    const half = n / 2;
+    this.#core.split(x, re, im, half);
+    this.transform(re, im, half);
+    this.#core.untangle(re, im, this.#turn(half), half);
+  }
+
+  /**
+   * The n real values whose transform begins with the n/2 + 1 given; those are overwritten.
+   *
+   * shapes  re, im (n/2 + 1), x (n), n a power of two; the imaginary parts of the first and the last are taken as zero
+   * units   as the input's
+   * throws  as `transform`
+   * source  Press et al. (2007), section 12.3.2
+   * cost    half a transform of n
+   */
+  realInverse(re: Pointer, im: Pointer, x: Pointer, n: number): void {
+    if (n === 1) {
+      new Float64Array(this.#arena.buffer, x, 1)[0] = new Float64Array(this.#arena.buffer, re, 1)[0];
+      return;
+    }
+    const half = n / 2;
+    this.#core.tangle(re, im, this.#turn(half), half);
+    this.transform(im, re, half);
+    this.#core.join(x, re, im, 1 / n, half);
+  }
+
+  #plan(n: number): Plan {
+    if (!(n >= 1) || (n & (n - 1)) !== 0)
+      throw new RangeError(`A Fourier transform of ${n} values: expected a power of two.`);
+    let plan = this.#plans.get(n);
+    if (plan === undefined) {
+      const passes: Pass[] = [];
+      let left = n;
+      for (; left >= 4; left /= 4) passes.push({ m: left / 4, s: n / left, factors: this.#factors(left) });
+      plan = { passes, endsByTwo: left === 2 };
+      this.#plans.set(n, plan);
+    }
+    return plan;
+  }
+
+  /** Cos and sin of w^p, w^2p, w^3p, w = exp(-2πi/n), p < n/4. */
+  #factors(n: number): Pointer {
+    const m = n / 4;
+    const at = this.#arena.takeTable(8 * 6 * m);
+    const table = new Float64Array(this.#arena.buffer, at, 6 * m);
+    for (let p = 0; p < m; p++) {
+      for (let j = 1; j <= 3; j++) {
+        const [cos, sin] = turn(j * p, n);
+        table[(2 * j - 2) * m + p] = cos;
+        table[(2 * j - 1) * m + p] = -sin;
+      }
+    }
+    return at;
+  }
+
+  /** Cos and sin of exp(-πi k/half), k <= half/2. */
+  #turn(half: number): Pointer {
+    let at = this.#turns.get(half);
+    if (at === undefined) {
+      const count = (half >> 1) + 1;
+      at = this.#arena.takeTable(16 * count);
+      const table = new Float64Array(this.#arena.buffer, at, 2 * count);
+      for (let k = 0; k < count; k++) {
+        const [cos, sin] = turn(k, 2 * half);
+        table[k] = cos;
+        table[count + k] = -sin;
+      }
+      this.#turns.set(half, at);
+    }
+    return at;
+  }
+}

@@ -1,0 +1,81 @@
+/**
+ * Products of any shape, cut into panels that fit the caches (Goto & van de Geijn 2008): a panel of the right factor stays
+ * in the last cache, one of the left in the second, and a strip of four columns in the first.
+ */
+import type { Pointer, ProductLoops } from './core.ts';
+
+/** Steps summed at a time; the order of the sums, and so the bits of a result, hang on this number alone. */
+const STEPS = 256;
+const ROWS = 64;
+const COLUMNS = 512;
+/** Bytes of scratch a product needs. */
+export const PANEL_BYTES = 8 * STEPS * (ROWS + COLUMNS);
+/** A skew so large that no tile lies above the diagonal. */
+const WHOLE = 1 << 30;
+
+/** One factor of a product: element (row, step) lies at `at` plus row × rowStride + step × stepStride elements. */
+export interface Factor {
+  readonly at: Pointer;
+  readonly rowStride: number;
+  readonly stepStride: number;
+  readonly isSingle: boolean;
+}
+
+/**
+ * C += A B' over the steps of both factors, or C -= A B'.
+ *
+ * shapes  c (m × n) with `stride` elements from row to row; a (m × steps), b (n × steps)
+ * units   any
+ * throws  nothing; the caller checked the lengths
+ * source  Goto & van de Geijn, ACM TOMS 34 (2008), article 12
+ * cost    m n steps multiplications; half of it where only the lower triangle is asked for
+ */
+export function addProduct(
+  core: ProductLoops,
+  scratch: Pointer,
+  c: Pointer,
+  stride: number,
+  a: Factor,
+  b: Factor,
+  m: number,
+  n: number,
+  steps: number,
+  options: { isLower?: boolean; isTaken?: boolean } = {},
+): void {
+  const left = scratch + 8 * STEPS * COLUMNS;
+  const isTaken = options.isTaken === true ? 1 : 0;
+  for (let j = 0; j < n; j += COLUMNS) {
+    const columns = Math.min(COLUMNS, n - j);
+    for (let t = 0; t < steps; t += STEPS) {
+      const depth = Math.min(STEPS, steps - t);
+      pack(core, scratch, b, j, t, columns, depth);
+      for (let i = 0; i < m; i += ROWS) {
+        const rows = Math.min(ROWS, m - i);
+        if (options.isLower === true && i + rows <= j) continue;
+        pack(core, left, a, i, t, rows, depth);
+        const skew = options.isLower === true ? i - j : WHOLE;
+        core.panels(c + 8 * (i * stride + j), stride, left, scratch, rows, columns, depth, skew, isTaken);
+      }
+    }
+  }
+}
+
+function pack(
+  core: ProductLoops,
+  to: Pointer,
+  factor: Factor,
+  row: number,
+  step: number,
+  rows: number,
+  steps: number,
+): void {
+  const { rowStride, stepStride } = factor;
+  const offset = row * rowStride + step * stepStride;
+  if (factor.isSingle) core.pack32(to, factor.at + 4 * offset, rowStride, stepStride, rows, steps);
+  else core.pack64(to, factor.at + 8 * offset, rowStride, stepStride, rows, steps);
+}
+
+/** Copies the lower triangle onto the upper. */
+export function mirrorLower(c: Float64Array, n: number): void {
+  for (let i = 1; i < n; i++) for (let j = 0; j < i; j++) c[j * n + i] = c[i * n + j];
+}
