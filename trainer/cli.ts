@@ -14,6 +14,7 @@ import { rollCommand } from './commands/roll.ts';
 import { sealCommand } from './commands/seal.ts';
 import { showCommand } from './commands/show.ts';
 import { siteCommand } from './commands/site.ts';
+import { sizeCommand } from './commands/size.ts';
 import { surveyCommand } from './commands/survey.ts';
 import { watchCommand } from './commands/watch.ts';
 import { TrainError } from './errors.ts';
@@ -24,6 +25,7 @@ const commands: readonly (() => Command)[] = [
   showCommand,
   siteCommand,
   surveyCommand,
+  sizeCommand,
   fitCommand,
   hindcastCommand,
   rollCommand,
