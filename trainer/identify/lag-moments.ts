@@ -4,7 +4,7 @@
  * readings equally far apart differ by their two ends alone; only lags with lags are summed directly. Before the first
  * reading a channel stood still, as in the filter.
  */
-import { dotShifted, joinPoles, productsOfChanges, shiftBack } from './cross-steps.ts';
+import { dotShifted, dotsShifted, joinPoles, productsOfChanges, shiftBack } from './cross-steps.ts';
 import type { Block, MomentInput, Moments } from './moments.ts';
 import type { Poles } from './poles.ts';
 
@@ -118,7 +118,7 @@ function eachRecursiveProduct(
   const p = before.length;
   const F = p / nc;
   const longest = rings.lags[rings.lags.length - 1];
-  const together = productsOfChanges(changes, block, 0, longest, -1);
+  const together = productsOfChanges(changes, block, longest, -1);
   const moved = cross.slice();
   const sums = new Float64Array(moved.length);
   for (let back = 0; back < longest; back++) {
@@ -146,13 +146,18 @@ function lagsAhead(
   const to = block.toIndex + longest;
   // Entry l·(H + 1) + h: Σ y_c(t - l) y_i(t + h).
   const shifted = new Float64Array((longest + 1) * (H + 1));
+  const near = new Float64Array(H + 1);
+  const far = new Float64Array(longest);
   for (let c = 0; c < padded.length; c++) {
     for (let i = 0; i < signalCount; i++) {
       const past = padded[c];
       const ahead = padded[i];
+      dotsShifted(past, ahead, from, to, 0, near);
+      // Σ y_c(t - l) y_i(t + H) for l = longest … 1, taken from the later end.
+      dotsShifted(ahead, past, from + H, to + H, -longest - H, far);
       for (let apart = 0; apart <= longest + H; apart++) {
         const nearest = Math.max(0, apart - H);
-        let sum = dotShifted(past, ahead, from - nearest, to - nearest, apart);
+        let sum = nearest === 0 ? near[apart] : far[longest - nearest];
         shifted[nearest * (H + 1) + apart - nearest] = sum;
         for (let l = nearest + 1; l <= Math.min(longest, apart); l++) {
           const h = apart - l;

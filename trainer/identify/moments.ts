@@ -125,7 +125,7 @@ function closeBlock(
   const nc = changes.length;
   const p = before.length;
   const { horizon, signalCount } = input;
-  const lagged = productsOfChanges(changes, block, 0, horizon);
+  const lagged = productsOfChanges(changes, block, horizon);
   const stepwise = new Float64Array(horizon * signalCount * p);
   const cross = furthest;
   for (let k = horizon; k >= 1; k--) {
