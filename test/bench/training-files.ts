@@ -3,14 +3,14 @@
  * so that ten million rows take no more memory than ten thousand.
  */
 import { closeSync, openSync, rmSync, writeSync } from 'node:fs';
-import { DOUBLE, DuckDBDataChunk, DuckDBInstance } from '@duckdb/node-api';
+import { DOUBLE, type DuckDBConnection, DuckDBDataChunk, DuckDBInstance } from '@duckdb/node-api';
 import { FIRST_TICK, PlantStream, SIGNAL_COUNT, SIGNAL_NAMES, TICK_MS } from './training-plant.ts';
 
 /** Seed of every history of this suite: a longer one begins as a shorter one does. */
 export const SEED = 20_040_101;
 /** Rows of a DuckDB vector. */
 const VECTOR_ROWS = 2048;
-const PIECE_ROWS = 32 * VECTOR_ROWS;
+const PIECE_ROWS = 128 * VECTOR_ROWS;
 /** NumPy pads its header to whole blocks of so many bytes; peers in other languages pass over one. */
 export const ARRAY_HEADER_BYTES = 128;
 
@@ -25,36 +25,45 @@ export interface PlantFiles {
  * microsecond) and one a signal, as data frames are usually exported; missing readings are null there and NaN in the array.
  */
 export async function writePlant(files: PlantFiles, rows: number, skip = 0): Promise<void> {
-  const store = `${files.parquet}.duckdb`;
-  const instance = await DuckDBInstance.create(store, { memory_limit: '1GB', threads: '2' });
+  const instance = await DuckDBInstance.create(':memory:', { memory_limit: '300MB', threads: '2' });
   const connection = await instance.connect();
   const array = files.array === null ? null : openSync(files.array, 'w');
+  const parts: string[] = [];
   try {
-    await connection.run(
-      `create table plant (tick double, ${SIGNAL_NAMES.map((name) => `"${name}" double`).join(', ')})`,
-    );
-    const appender = await connection.createAppender('plant');
     if (array !== null) writeSync(array, arrayHeader(rows));
-    for (const [piece, first] of pieces(rows, skip)) {
-      if (array !== null) writeSync(array, new Uint8Array(piece.buffer, piece.byteOffset, piece.byteLength));
-      for (let at = 0; at < piece.length; at += VECTOR_ROWS * SIGNAL_COUNT)
-        appender.appendDataChunk(
-          chunkOf(piece.subarray(at, at + VECTOR_ROWS * SIGNAL_COUNT), first + at / SIGNAL_COUNT),
-        );
-      appender.flushSync();
+    for (const [part, first] of pieces(rows, skip)) {
+      if (array !== null) writeSync(array, new Uint8Array(part.buffer, part.byteOffset, part.byteLength));
+      parts.push(`${files.parquet}.${parts.length}`);
+      await writePart(connection, parts[parts.length - 1]!, part, first);
     }
-    appender.closeSync();
-    const columns = SIGNAL_NAMES.map((name) => `"${name}"`).join(', ');
-    const path = files.parquet.replaceAll("'", "''");
-    await connection.run(
-      `copy (select to_timestamp(tick * ${TICK_MS / 1000}) as time, ${columns} from plant) to '${path}' (format parquet)`,
-    );
+    const all = parts.map(quoted).join(', ');
+    await connection.run(`copy (from read_parquet([${all}])) to ${quoted(files.parquet)} (format parquet)`);
   } finally {
     if (array !== null) closeSync(array);
     connection.closeSync();
     instance.closeSync();
-    for (const file of [store, `${store}.wal`]) rmSync(file, { force: true });
+    for (const part of parts) rmSync(part, { force: true });
   }
+}
+
+/** A part of the rows as a file of its own: what a table holds is in memory, and a file's rows are not. */
+async function writePart(connection: DuckDBConnection, path: string, part: Float64Array, first: number): Promise<void> {
+  const names = SIGNAL_NAMES.map((name) => `"${name}"`);
+  await connection.run(`create table part (tick double, ${names.map((name) => `${name} double`).join(', ')})`);
+  const appender = await connection.createAppender('part');
+  for (let at = 0; at < part.length; at += VECTOR_ROWS * SIGNAL_COUNT) {
+    const now = part.subarray(at, at + VECTOR_ROWS * SIGNAL_COUNT);
+    appender.appendDataChunk(chunkOf(now, first + at / SIGNAL_COUNT));
+  }
+  appender.closeSync();
+  const columns = `to_timestamp(tick * ${TICK_MS / 1000}) as time, ${names.join(', ')}`;
+  await connection.run(`copy (select ${columns} from part) to ${quoted(path)} (format parquet)`);
+  await connection.run('drop table part');
+}
+
+/** A path in SQL. */
+function quoted(path: string): string {
+  return `'${path.replaceAll("'", "''")}'`;
 }
 
 /** Pieces of the plant and their first ticks. */
