@@ -21,6 +21,9 @@ const INTERRUPTED = 130;
 /** Work of a fit whose history is next to nothing, in bytes read. */
 const LEAST_WEIGHT = 500_000;
 
+/** Below this a worker could not even load the program. */
+const LEAST_HEAP_MB = 256;
+
 /** What the command line asks of a fleet. */
 export interface FleetOptions {
   readonly fleet: string;
@@ -44,6 +47,7 @@ export async function fitFleet(options: FleetOptions): Promise<void> {
   const progress = createFleetProgress(works.map(({ weight }) => weight));
   const { results, isStopped } = await runFleet(works, {
     threads: threads.count,
+    heapMb: Math.max(LEAST_HEAP_MB, Math.round(machine.freeBytes / 1e6 / threads.count)),
     progress,
     signal: interrupt.signal,
   }).finally(() => {

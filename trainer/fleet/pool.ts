@@ -17,18 +17,30 @@ function workerFile(): URL {
   return new URL(import.meta.url.endsWith('.ts') ? '../dist/fleet/worker.js' : './worker.js', import.meta.url);
 }
 
+/** How to start it. */
+export interface PoolShape {
+  readonly threads: number;
+  /** Largest heap of a worker, in MB, so that one gone wild dies alone; the engine's own limit when absent. */
+  readonly heapMb?: number | undefined;
+  /** Another worker, for tests of workers that die. */
+  readonly workerFile?: URL | undefined;
+}
+
 /**
  * Starts a pool.
  *
  * onNote  told what a worker begins to do
- * file    another worker, for tests of workers that die
  */
-export function startPool(threads: number, onNote: (note: FleetNote) => void, file = workerFile()): FleetPool {
+export function startPool(
+  { threads, heapMb, workerFile: file = workerFile() }: PoolShape,
+  onNote: (note: FleetNote) => void,
+): FleetPool {
   const pool = new Piscina<FleetTask, FleetOutcome>({
     filename: file.href,
     minThreads: threads,
     maxThreads: threads,
     recordTiming: false,
+    ...(heapMb === undefined ? {} : { resourceLimits: { maxOldGenerationSizeMb: heapMb } }),
   });
   pool.on('message', (note: FleetNote) => onNote(note));
   // A worker that dies between tasks took no site with it; without a listener it would end the program.

@@ -30,7 +30,8 @@ export interface FleetRun {
   readonly progress: FleetProgress;
   /** Aborted by an interrupt. */
   readonly signal: AbortSignal;
-  /** Worker file, for tests. */
+  /** As PoolShape. */
+  readonly heapMb?: number;
   readonly workerFile?: URL;
 }
 
@@ -53,9 +54,8 @@ export async function runFleet(works: readonly FleetWork[], run: FleetRun): Prom
   if (waiting.length === 0) return { results, isStopped: false };
   const label = (index: number): string => (works[index] as FleetWork).label;
   const pool = startPool(
-    Math.min(run.threads, waiting.length),
+    { threads: Math.min(run.threads, waiting.length), heapMb: run.heapMb, workerFile: run.workerFile },
     ({ index, step }) => run.progress.step(label(index), step),
-    run.workerFile,
   );
   const stop = (): void => void pool.stop();
   run.signal.addEventListener('abort', stop, { once: true });

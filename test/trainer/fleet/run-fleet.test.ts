@@ -1,0 +1,144 @@
+/** Many sites on worker threads. The workers are those of the last build, which `npm test` makes first. */
+import { createHash } from 'node:crypto';
+import { readdirSync, readFileSync, writeFileSync } from 'node:fs';
+import { join } from 'node:path';
+import { describe, expect, it } from 'vitest';
+import { FIT_DEFAULTS } from '../../../trainer/fit-options.ts';
+import { fitSite } from '../../../trainer/fit-site.ts';
+import { fleetJson } from '../../../trainer/fleet/fleet-json.ts';
+import type { FleetProgress } from '../../../trainer/fleet/fleet-progress.ts';
+import { type FleetWork, runFleet } from '../../../trainer/fleet/run-fleet.ts';
+import { readSite } from '../../../trainer/site-file.ts';
+import { writeFleet } from '../../support/fleet.ts';
+import { testFolder } from '../../support/folder.ts';
+
+const SITES = ['north', 'south', 'west'];
+const QUIET: FleetProgress = { step: () => {}, done: () => {}, end: () => {} };
+/** One kind, which is quick; what is tested is the same for all. */
+const { progress: _, ...OPTIONS } = { ...FIT_DEFAULTS, kind: 'linear' as const };
+
+function worksOf(fleet: string, out: string, seed = 1, names: readonly string[] = SITES): FleetWork[] {
+  return names.map((label, index) => ({
+    label,
+    problem: null,
+    weight: 1 + index,
+    task: {
+      index,
+      isFresh: false,
+      job: {
+        site: readSite(join(fleet, label, 'site.yaml')),
+        history: [join(fleet, label, 'log.csv')],
+        out: join(out, label),
+        zone: null,
+        span: {},
+        options: { ...OPTIONS, seed },
+      },
+    },
+  }));
+}
+
+function run(works: readonly FleetWork[], threads: number) {
+  return runFleet(works, { threads, progress: QUIET, signal: new AbortController().signal });
+}
+
+function digests(folder: string): Record<string, string> {
+  const files = readdirSync(folder, { recursive: true, withFileTypes: true }).filter((entry) => entry.isFile());
+  return Object.fromEntries(
+    files
+      .map((entry) => join(entry.parentPath, entry.name))
+      .sort()
+      .map((path) => [path.slice(folder.length), createHash('sha256').update(readFileSync(path)).digest('hex')]),
+  );
+}
+
+describe('the same bytes', () => {
+  it('with one, two and three threads, and as a single fit gives', async () => {
+    const fleet = testFolder();
+    writeFleet(fleet, SITES);
+    const seen: unknown[] = [];
+    for (const threads of [1, 2, 3]) {
+      const out = testFolder();
+      const { results } = await run(worksOf(fleet, out), threads);
+      seen.push([digests(out), fleetJson(results.filter((one) => one !== null))]);
+    }
+    expect(Object.keys((seen[0] as [object])[0])).toHaveLength(15);
+    expect(seen[1]).toEqual(seen[0]);
+    expect(seen[2]).toEqual(seen[0]);
+    const job = worksOf(fleet, '/out')[1]!.task!.job;
+    const alone = await fitSite(job, { reading: { update: () => {}, end: () => {} }, step: () => {}, end: () => {} });
+    for (const { path, bytes } of alone.files)
+      expect((seen[0] as [Record<string, string>])[0][path.slice('/out'.length)], path).toBe(
+        createHash('sha256').update(bytes).digest('hex'),
+      );
+  });
+});
+
+describe('going on', () => {
+  it('leaves alone what is unchanged, and fits again what is not: inputs, options or result', async () => {
+    const fleet = testFolder();
+    const out = testFolder();
+    writeFleet(fleet, SITES);
+    const again = async (seedOfWest = 1): Promise<string[]> => {
+      const works = worksOf(fleet, out);
+      works[2] = worksOf(fleet, out, seedOfWest)[2]!;
+      const { results } = await run(works, 1);
+      return results.map((one) => (one?.facts == null ? 'failed' : one.isUnchanged ? 'unchanged' : 'fitted'));
+    };
+    expect(await again()).toEqual(['fitted', 'fitted', 'fitted']);
+    const first = digests(out);
+    writeFileSync(join(out, 'south', 'hindcast.json'), 'spoilt');
+    writeFileSync(join(out, 'west', 'fit-record.json'), '{"format":1');
+    expect(await again()).toEqual(['unchanged', 'fitted', 'fitted']);
+    expect(digests(out)).toEqual(first);
+    const log = join(fleet, 'north', 'log.csv');
+    writeFileSync(log, readFileSync(log, 'utf8').split('\n').slice(0, -20).join('\n'));
+    expect(await again(2)).toEqual(['fitted', 'unchanged', 'fitted']);
+  });
+
+  it('after an interrupt, with what is finished kept and nothing half-written', async () => {
+    const fleet = testFolder();
+    const out = testFolder();
+    writeFleet(fleet, SITES);
+    const interrupt = new AbortController();
+    const progress = { ...QUIET, done: () => interrupt.abort() };
+    const { results, isStopped } = await runFleet(worksOf(fleet, out), {
+      threads: 1,
+      progress,
+      signal: interrupt.signal,
+    });
+    expect(isStopped).toBe(true);
+    // The heaviest went first.
+    expect(results.map((one) => one?.label ?? null)).toEqual([null, null, 'west']);
+    expect(readdirSync(out)).toEqual(['west']);
+    const { results: rest } = await run(worksOf(fleet, out), 2);
+    expect(rest.map((one) => one?.facts != null && one.isUnchanged)).toEqual([false, false, true]);
+  });
+});
+
+describe('a worker that dies', () => {
+  it.each([
+    ['leaves', /its worker ended early \(worker exited with code: 7\)/],
+    ['hungry', /its worker ran out of memory/],
+  ])('%s: fails its one site, and the pool goes on', async (how, words) => {
+    const fleet = testFolder();
+    writeFleet(fleet, ['north']);
+    const one = worksOf(fleet, '/out', 1, ['north'])[0]!;
+    const works = ['a', how, 'b', 'c'].map(
+      (label): FleetWork => ({
+        ...one,
+        label,
+        task: { ...one.task!, job: { ...one.task!.job, out: `/out/${label}` } },
+      }),
+    );
+    const { results, isStopped } = await runFleet(works, {
+      threads: 1,
+      progress: QUIET,
+      signal: new AbortController().signal,
+      heapMb: 64,
+      workerFile: new URL('./worker-deaths.mjs', import.meta.url),
+    });
+    expect(isStopped).toBe(false);
+    expect(results[1]!.problem).toMatch(words);
+    expect([0, 2, 3].map((k) => results[k]!.problem)).toEqual(['lived: /out/a', 'lived: /out/b', 'lived: /out/c']);
+  });
+});
