@@ -10,11 +10,28 @@ export type Pointer = number;
 
 /** Packed panels and their products. */
 export interface ProductLoops {
-  pack64(to: Pointer, from: Pointer, rowStride: number, stepStride: number, rows: number, steps: number): void;
-  pack32(to: Pointer, from: Pointer, rowStride: number, stepStride: number, rows: number, steps: number): void;
+  pack64(
+    to: Pointer,
+    from: Pointer,
+    rowStride: number,
+    stepStride: number,
+    rows: number,
+    steps: number,
+    width: number,
+  ): void;
+  pack32(
+    to: Pointer,
+    from: Pointer,
+    rowStride: number,
+    stepStride: number,
+    rows: number,
+    steps: number,
+    width: number,
+  ): void;
   panels(
     c: Pointer,
-    stride: number,
+    rowStride: number,
+    columnStride: number,
     a: Pointer,
     b: Pointer,
     rows: number,

@@ -1,6 +1,6 @@
 /**
  * Products of any shape, cut into panels that fit the caches (Goto & van de Geijn 2008): a panel of the right factor stays
- * in the last cache, one of the left in the second, and a strip of four columns in the first.
+ * in the last cache, one of the left in the second, and a strip of eight columns in the first.
  */
 import type { Pointer, ProductLoops } from './core.ts';
 
@@ -10,6 +10,8 @@ const ROWS = 64;
 const COLUMNS = 512;
 /** Bytes of scratch a product needs. */
 export const PANEL_BYTES = 8 * STEPS * (ROWS + COLUMNS);
+/** Fewer columns than that are narrow. */
+const NARROW = 8;
 /** A skew so large that no tile lies above the diagonal. */
 const WHOLE = 1 << 30;
 
@@ -42,19 +44,40 @@ export function addProduct(
   steps: number,
   options: { isLower?: boolean; isTaken?: boolean } = {},
 ): void {
+  const isLower = options.isLower === true;
+  // A narrow right factor would leave most of its strips of eight empty: then the other side takes them. The sums are the same.
+  if (n < m && n < NARROW && !isLower)
+    addPanels(core, scratch, c, 1, stride, b, a, n, m, steps, isLower, options.isTaken);
+  else addPanels(core, scratch, c, stride, 1, a, b, m, n, steps, isLower, options.isTaken);
+}
+
+function addPanels(
+  core: ProductLoops,
+  scratch: Pointer,
+  c: Pointer,
+  rowStride: number,
+  columnStride: number,
+  a: Factor,
+  b: Factor,
+  m: number,
+  n: number,
+  steps: number,
+  isLower: boolean,
+  isTaken = false,
+): void {
   const left = scratch + 8 * STEPS * COLUMNS;
-  const isTaken = options.isTaken === true ? 1 : 0;
   for (let j = 0; j < n; j += COLUMNS) {
     const columns = Math.min(COLUMNS, n - j);
     for (let t = 0; t < steps; t += STEPS) {
       const depth = Math.min(STEPS, steps - t);
-      pack(core, scratch, b, j, t, columns, depth);
+      pack(core, scratch, b, j, t, columns, depth, 8);
       for (let i = 0; i < m; i += ROWS) {
         const rows = Math.min(ROWS, m - i);
-        if (options.isLower === true && i + rows <= j) continue;
-        pack(core, left, a, i, t, rows, depth);
-        const skew = options.isLower === true ? i - j : WHOLE;
-        core.panels(c + 8 * (i * stride + j), stride, left, scratch, rows, columns, depth, skew, isTaken);
+        if (isLower && i + rows <= j) continue;
+        pack(core, left, a, i, t, rows, depth, 2);
+        const to = c + 8 * (i * rowStride + j * columnStride);
+        const skew = isLower ? i - j : WHOLE;
+        core.panels(to, rowStride, columnStride, left, scratch, rows, columns, depth, skew, isTaken ? 1 : 0);
       }
     }
   }
@@ -68,11 +91,12 @@ function pack(
   step: number,
   rows: number,
   steps: number,
+  width: number,
 ): void {
   const { rowStride, stepStride } = factor;
   const offset = row * rowStride + step * stepStride;
-  if (factor.isSingle) core.pack32(to, factor.at + 4 * offset, rowStride, stepStride, rows, steps);
-  else core.pack64(to, factor.at + 8 * offset, rowStride, stepStride, rows, steps);
+  if (factor.isSingle) core.pack32(to, factor.at + 4 * offset, rowStride, stepStride, rows, steps, width);
+  else core.pack64(to, factor.at + 8 * offset, rowStride, stepStride, rows, steps, width);
 }
 
 /** Copies the lower triangle onto the upper. */

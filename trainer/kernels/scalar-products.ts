@@ -1,5 +1,5 @@
 /** The loops of assembly/products.ts in plain numbers; see core.ts. */
-import type { Pointer, ProductLoops } from './core.ts';
+import type { ProductLoops } from './core.ts';
 
 /**
  * The loops over one memory.
@@ -14,16 +14,20 @@ export function scalarProducts(buffer: ArrayBuffer): ProductLoops {
   const heap = new Float64Array(buffer);
   const heap32 = new Float32Array(buffer);
   return {
-    pack64: (to, from, rowStride, stepStride, rows, steps) =>
-      pack(heap, to / 8, heap, from / 8, rowStride, stepStride, rows, steps),
-    pack32: (to, from, rowStride, stepStride, rows, steps) =>
-      pack(heap, to / 8, heap32, from / 4, rowStride, stepStride, rows, steps),
-    panels(c, stride, a, b, rows, columns, steps, skew, isTaken) {
-      for (let j = 0; j < columns; j += 4) {
-        for (let i = 0; i < rows; i += 4) {
-          if (i + skew + 3 < j) continue;
-          const to = c + 8 * (i * stride + j);
-          tile(heap, to, stride, a + 8 * i * steps, b + 8 * j * steps, rows - i, columns - j, steps, isTaken);
+    pack64: (to, from, rowStride, stepStride, rows, steps, width) =>
+      pack(heap, to / 8, heap, from / 8, rowStride, stepStride, rows, steps, width),
+    pack32: (to, from, rowStride, stepStride, rows, steps, width) =>
+      pack(heap, to / 8, heap32, from / 4, rowStride, stepStride, rows, steps, width),
+    panels(c, rowStride, columnStride, a, b, rows, columns, steps, skew, isTaken) {
+      const sign = isTaken ? -1 : 1;
+      for (let j = 0; j < columns; j += 8) {
+        for (let i = 0; i < rows; i += 2) {
+          if (i + skew + 1 < j) continue;
+          const inside = Math.min(8, columns - j);
+          const to = c / 8 + i * rowStride + j * columnStride;
+          const [left, right] = [a / 8 + i * steps, b / 8 + j * steps];
+          addRow(heap, to, columnStride, left, right, inside, steps, sign);
+          if (i + 1 < rows) addRow(heap, to + rowStride, columnStride, left + 1, right, inside, steps, sign);
         }
       }
     },
@@ -39,46 +43,35 @@ function pack(
   stepStride: number,
   rows: number,
   steps: number,
+  width: number,
 ): void {
-  for (let strip = 0; strip < rows; strip += 4) {
+  for (let strip = 0; strip < rows; strip += width) {
     for (let t = 0; t < steps; t++) {
       const at = from + strip * rowStride + t * stepStride;
-      for (let i = 0; i < 4; i++) heap[to++] = strip + i < rows ? source[at + i * rowStride] : 0;
+      for (let i = 0; i < width; i++) heap[to++] = strip + i < rows ? source[at + i * rowStride] : 0;
     }
   }
 }
 
-/** Four rows of one column at a time: each element sums its products in order, as a lane does. */
-function tile(
+/** One row of a tile, two columns at a time: each element sums its products in order, as a lane does. */
+function addRow(
   heap: Float64Array,
-  c: Pointer,
-  stride: number,
-  a: Pointer,
-  b: Pointer,
-  rows: number,
+  to: number,
+  columnStride: number,
+  a: number,
+  b: number,
   columns: number,
   steps: number,
-  isTaken: number,
+  sign: number,
 ): void {
-  const to = c / 8;
-  const sign = isTaken ? -1 : 1;
-  for (let j = 0; j < 4 && j < columns; j++) {
-    let s0 = 0;
-    let s1 = 0;
-    let s2 = 0;
-    let s3 = 0;
-    let left = a / 8;
-    let right = b / 8 + j;
-    for (let t = 0; t < steps; t++, left += 4, right += 4) {
-      const y = heap[right];
-      s0 += heap[left] * y;
-      s1 += heap[left + 1] * y;
-      s2 += heap[left + 2] * y;
-      s3 += heap[left + 3] * y;
+  for (let j = 0; j < columns; j += 2) {
+    let low = 0;
+    let high = 0;
+    for (let t = 0, left = a, right = b + j; t < steps; t++, left += 2, right += 8) {
+      low += heap[left] * heap[right];
+      high += heap[left] * heap[right + 1];
     }
-    heap[to + j] += sign * s0;
-    if (rows > 1) heap[to + stride + j] += sign * s1;
-    if (rows > 2) heap[to + 2 * stride + j] += sign * s2;
-    if (rows > 3) heap[to + 3 * stride + j] += sign * s3;
+    heap[to + j * columnStride] += sign * low;
+    if (j + 1 < columns) heap[to + (j + 1) * columnStride] += sign * high;
   }
 }
