@@ -5,6 +5,7 @@
  */
 import { ProtocolError } from '@stillwell/protocol';
 import { Command, CommanderError } from 'commander';
+import { condenseCommand } from './commands/condense.ts';
 import { deskCommand } from './commands/desk.ts';
 import { fitCommand } from './commands/fit.ts';
 import { hindcastCommand } from './commands/hindcast.ts';
@@ -24,6 +25,7 @@ const commands: readonly (() => Command)[] = [
   sealCommand,
   showCommand,
   siteCommand,
+  condenseCommand,
   surveyCommand,
   sizeCommand,
   fitCommand,
