@@ -7,6 +7,7 @@ export type TrainErrorCode =
   | 'no-skill'
   | 'keys'
   | 'bundle'
+  | 'factors'
   | 'archive'
   | 'broker';
 

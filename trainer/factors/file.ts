@@ -1,0 +1,202 @@
+/**
+ * Factors as a file, `.swf`: little-endian, every part a multiple of eight bytes.
+ *
+ * | offset | size | meaning |
+ * | --- | --- | --- |
+ * | 0 | 8 | magic, "swfactor" |
+ * | 8 | 4 | version, 1 |
+ * | 12 | 4 | n, bytes of the head, a multiple of 8 |
+ * | 16 | 8 | m, float64 numbers of the body |
+ * | 24 | 32 | SHA-256 over bytes 0..23 and 56 to the end |
+ * | 56 | n | head: JSON, filled up with spaces |
+ * | 56 + n | 8 m | body: float64 |
+ *
+ * The head names the site and all sizes. The body has, in this order: offsets (nc); the sums as `SUM_ARRAYS` lists them; of each
+ * end: weight, isThere (nc), level (nc), changes (nc × places); of the open run, where there is one: isThere (nc), level (nc),
+ * changes (nc × kept); of what waits: last (nc), gap (nc), values (nc × waiting), isExcluded (waiting), watches (ny × 21).
+ */
+import { type Site, schemaHash, sha256, toHex } from '@stillwell/protocol';
+import { TrainError } from '../errors.ts';
+import { channelsOf } from '../history/channels.ts';
+import { readBytesFile } from '../key-file.ts';
+import type { Factors, OpenRun, RunEnd, RunSums, Waiting } from './factors.ts';
+import { gridOf } from './moments.ts';
+import { SUM_ARRAYS, sumLengths } from './run-sums.ts';
+import { WILD_STATE } from './wild.ts';
+
+const MAGIC = 'swfactor';
+/** Version written, and the only one read. */
+export const FACTORS_VERSION = 1;
+const HEAD_AT = 56;
+const ANEW = 'run fit on the whole history to write it anew';
+
+/** What the head says beside the shape. */
+type Head = Omit<Factors, 'offsets' | 'sums' | 'ends' | 'open' | 'waiting'> & {
+  readonly count: number;
+  readonly ends: number;
+  readonly open: { readonly ticks: number; readonly kept: number } | null;
+  readonly waiting: number;
+};
+
+/**
+ * Writes factors down; the same factors give the same bytes.
+ *
+ * shapes  none
+ * units   bytes
+ * throws  nothing
+ * source  file head
+ * cost    the size of the file
+ */
+export function encodeFactors(factors: Factors): Uint8Array {
+  const { offsets, sums, ends, open, waiting, ...shape } = factors;
+  const head: Head = {
+    ...shape,
+    count: sums.count,
+    ends: ends.length,
+    open: open && { ticks: open.ticks, kept: open.changes[0].length },
+    waiting: waiting.isExcluded.length,
+  };
+  const json = new TextEncoder().encode(JSON.stringify(head));
+  const headBytes = 8 * Math.ceil(json.length / 8);
+  const body: (Float64Array | Uint8Array)[] = [offsets, ...SUM_ARRAYS.map((key) => sums[key])];
+  for (const { weight, isThere, level, changes } of ends) body.push(Float64Array.of(weight), isThere, level, changes);
+  if (open !== null) body.push(open.isThere, open.level, ...open.changes);
+  body.push(waiting.last, waiting.gap, ...waiting.values, waiting.isExcluded, ...waiting.watches);
+  const numbers = body.reduce((sum, part) => sum + part.length, 0);
+  const bytes = new Uint8Array(HEAD_AT + headBytes + 8 * numbers);
+  const view = new DataView(bytes.buffer);
+  bytes.set(new TextEncoder().encode(MAGIC));
+  view.setUint32(8, FACTORS_VERSION, true);
+  view.setUint32(12, headBytes, true);
+  view.setBigUint64(16, BigInt(numbers), true);
+  bytes.fill(0x20, HEAD_AT, HEAD_AT + headBytes);
+  bytes.set(json, HEAD_AT);
+  const out = new Float64Array(bytes.buffer, HEAD_AT + headBytes, numbers);
+  let at = 0;
+  for (const part of body) {
+    out.set(part, at);
+    at += part.length;
+  }
+  bytes.set(sha256(bytes.subarray(0, 24), bytes.subarray(HEAD_AT)), 24);
+  return bytes;
+}
+
+/**
+ * Reads factors from bytes.
+ *
+ * shapes  none
+ * units   bytes
+ * throws  TrainError 'factors' if they are no factors, of another version, cut short or damaged
+ * source  file head
+ * cost    the size of the file
+ */
+export function decodeFactors(bytes: Uint8Array, path: string): Factors {
+  const refuse = (what: string): never => {
+    throw new TrainError('factors', `${path}: ${what}; give the file as fit or refit wrote it, or ${ANEW}`, {
+      details: { path },
+    });
+  };
+  if (bytes.length < 8 || new TextDecoder().decode(bytes.subarray(0, 8)) !== MAGIC) return refuse('not a factors file');
+  if (bytes.length < HEAD_AT) return refuse(`cut short: ${bytes.length} bytes, expected at least ${HEAD_AT}`);
+  const view = new DataView(bytes.buffer, bytes.byteOffset, bytes.byteLength);
+  const version = view.getUint32(8, true);
+  if (version !== FACTORS_VERSION)
+    return refuse(`factors of version ${version}, this program reads ${FACTORS_VERSION}`);
+  const headBytes = view.getUint32(12, true);
+  const numbers = Number(view.getBigUint64(16, true));
+  const expected = HEAD_AT + headBytes + 8 * numbers;
+  if (bytes.length < expected) return refuse(`cut short: ${bytes.length} bytes, expected ${expected}`);
+  if (bytes.length > expected) return refuse(`${bytes.length - expected} bytes too many, expected ${expected}`);
+  const digest = sha256(bytes.subarray(0, 24), bytes.subarray(HEAD_AT));
+  if (Buffer.compare(digest, bytes.subarray(24, HEAD_AT)) !== 0) return refuse('damaged: its SHA-256 does not match');
+  try {
+    const head = JSON.parse(new TextDecoder().decode(bytes.subarray(HEAD_AT, HEAD_AT + headBytes))) as Head;
+    // A copy, since the body need not lie on a multiple of eight in the memory it came in.
+    const body = new Float64Array(bytes.slice(HEAD_AT + headBytes).buffer);
+    return fromParts(head, body);
+  } catch (cause) {
+    throw new TrainError('factors', `${path}: its sizes contradict each other; ${ANEW}`, { cause, details: { path } });
+  }
+}
+
+function fromParts(head: Head, body: Float64Array): Factors {
+  const { count, ends: endCount, open: openHead, waiting: waitingTicks, ...shape } = head;
+  const channels = shape.names.length;
+  const places = gridOf(shape).lags.length;
+  let at = 0;
+  const next = (length: number): Float64Array => {
+    at += length;
+    if (!(length >= 0) || at > body.length) throw new RangeError(`The body ends after ${body.length} numbers.`);
+    return body.slice(at - length, at);
+  };
+  const rows = (length: number): Float64Array[] => shape.names.map(() => next(length));
+  const offsets = next(channels);
+  const lengths = sumLengths(channels, places, shape.longestHorizon);
+  const arrays = Object.fromEntries(SUM_ARRAYS.map((key) => [key, next(lengths[key])]));
+  const sums = Object.freeze({ ...arrays, count } as unknown as RunSums);
+  const ends: RunEnd[] = Array.from({ length: endCount }, () => ({
+    weight: next(1)[0],
+    isThere: Uint8Array.from(next(channels)),
+    level: next(channels),
+    changes: next(channels * places),
+  }));
+  const open: OpenRun | null = openHead && {
+    ticks: openHead.ticks,
+    isThere: Uint8Array.from(next(channels)),
+    level: next(channels),
+    changes: rows(openHead.kept),
+  };
+  const waiting: Waiting = {
+    last: next(channels),
+    gap: next(channels),
+    values: rows(waitingTicks),
+    isExcluded: Uint8Array.from(next(waitingTicks)),
+    watches: Array.from({ length: shape.signalCount }, () => next(WILD_STATE)),
+  };
+  if (at !== body.length) throw new RangeError(`The body has ${body.length} numbers, ${at} of them known.`);
+  return Object.freeze({ ...shape, offsets, sums, ends, open, waiting });
+}
+
+/**
+ * Reads a factors file.
+ *
+ * shapes  none
+ * units   none
+ * throws  TrainError 'file' where there is none to read; as `decodeFactors`
+ * source  none
+ * cost    the size of the file
+ */
+export function readFactors(path: string): Factors {
+  return decodeFactors(readBytesFile(path, 'the factors (.swf) that fit or refit wrote'), path);
+}
+
+/**
+ * Refuses factors that are not of this site as it is now.
+ *
+ * shapes  none
+ * units   none
+ * throws  TrainError 'factors' naming what differs: site, tick, or signals, their order and units
+ * source  none
+ * cost    trivial
+ */
+export function checkBelongs(factors: Factors, site: Site, path: string): void {
+  const refuse = (what: string, got: string, expected: string): never => {
+    throw new TrainError(
+      'factors',
+      `${path}: of ${what} ${got}, expected ${expected}; give the factors of this site, or ${ANEW}`,
+      {
+        details: { path, got, expected },
+      },
+    );
+  };
+  if (factors.site !== site.site) refuse('site', factors.site, site.site);
+  if (factors.tickMs !== site.tickMs) refuse('a tick of', `${factors.tickMs} ms`, `${site.tickMs} ms`);
+  const channels = channelsOf(site);
+  const names = channels.map(({ name }) => name);
+  if (factors.names.join() !== names.join()) refuse('channels', factors.names.join(', '), names.join(', '));
+  const units = channels.map(({ unit }) => unit);
+  if (factors.units.join() !== units.join()) refuse('units', factors.units.join(', '), units.join(', '));
+  const schema = toHex(schemaHash(site));
+  if (factors.schema !== schema)
+    refuse('schema', factors.schema.slice(0, 12), `${schema.slice(0, 12)} (roles or aggregates differ)`);
+}

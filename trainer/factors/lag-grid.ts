@@ -1,0 +1,119 @@
+/**
+ * The places at which lagged sums are kept. Near ones are kept lag by lag. Further out lie panels an eighth as wide as they
+ * are far, and a panel keeps its lags spread over Chebyshev points: for any polynomial of their degree, and so to many digits
+ * for any function that smooth, the sum over the points equals the sum over the lags. What a bank asks there is smooth: a
+ * pole's powers, which by then turn slowly or have died out.
+ *
+ * ## How many points
+ * The bank's resonators turn at most 42 times within their memory (seven periods, six harmonics). One that has not yet fallen
+ * to e^-16 at lag l turns at most 42 · 16 · w / l times over w ticks there; a polynomial of degree n follows a wave of c turns
+ * over its span once n > π c, and some 20 more points bring it to rounding (Trefethen, Approximation Theory and
+ * Approximation Practice, 2013, chapters 3 and 8).
+ */
+
+/** Lags from..to-1, kept at `count` places from `place` on. */
+export interface Panel {
+  readonly from: number;
+  readonly to: number;
+  readonly place: number;
+  readonly count: number;
+}
+
+/** All places, ascending by panel; the first `dense` are the lags 0..dense-1 themselves. */
+export interface LagGrid {
+  readonly dense: number;
+  readonly panels: readonly Panel[];
+  /** (places) lag of each, whole or not. */
+  readonly lags: Float64Array;
+}
+
+/** A panel's share of its distance. */
+const PANEL_SHARE = 1 / 8;
+const TURNS_PER_MEMORY = 42;
+const MEMORIES = 16;
+const MORE_POINTS = 24;
+
+/**
+ * Lays out the places for lags 0..reach.
+ *
+ * shapes  `leastDense` lags at least are kept one by one
+ * units   ticks
+ * throws  nothing
+ * source  file head
+ * cost    O(places)
+ */
+export function layGrid(reach: number, leastDense: number): LagGrid {
+  const panels: Panel[] = [];
+  let from = Math.min(reach + 1, Math.max(leastDense, 256));
+  // Up to where panels would have as many points as lags.
+  while (from <= reach && pointsFor(from) >= widthAt(from)) from += 32;
+  const dense = Math.min(reach + 1, from);
+  const lags = Array.from({ length: dense }, (_, k) => k);
+  for (from = dense; from <= reach; ) {
+    const to = Math.min(reach + 1, from + widthAt(from));
+    const count = Math.min(to - from, pointsFor(from));
+    panels.push({ from, to, place: lags.length, count });
+    for (let q = 0; q < count; q++) lags.push(0.5 * (from + to - 1) + 0.5 * (to - 1 - from) * chebyshev(q, count));
+    from = to;
+  }
+  return { dense, panels, lags: Float64Array.from(lags) };
+}
+
+function widthAt(lag: number): number {
+  return Math.max(16, Math.floor(lag * PANEL_SHARE));
+}
+
+function pointsFor(lag: number): number {
+  return Math.ceil((Math.PI * TURNS_PER_MEMORY * MEMORIES * widthAt(lag)) / lag) + MORE_POINTS;
+}
+
+function chebyshev(q: number, count: number): number {
+  return Math.cos((Math.PI * (q + 0.5)) / count);
+}
+
+/**
+ * Spreads sequences by lag over a grid's places, adding to what is there.
+ *
+ * shapes  into (count × places), `from` (count) of lags 0, 1, … as far as they go
+ * units   any; sums over `into` of smooth functions equal those over `from`
+ * throws  nothing
+ * source  barycentric interpolation: Berrut & Trefethen, SIAM Review 46 (2004), section 5
+ * cost    O(count · lags · points of a panel)
+ */
+export function spreadOver(grid: LagGrid, into: Float64Array, from: readonly Float64Array[]): void {
+  const places = grid.lags.length;
+  const longest = Math.max(0, ...from.map((sequence) => sequence.length));
+  from.forEach((sequence, s) => {
+    const end = Math.min(grid.dense, sequence.length);
+    for (let lag = 0; lag < end; lag++) into[s * places + lag] += sequence[lag];
+  });
+  for (const panel of grid.panels) {
+    const shares = new Float64Array(panel.count);
+    for (let lag = panel.from; lag < Math.min(panel.to, longest); lag++) {
+      sharesOf(panel, lag, shares);
+      from.forEach((sequence, s) => {
+        if (lag >= sequence.length || sequence[lag] === 0) return;
+        const value = sequence[lag];
+        const at = s * places + panel.place;
+        for (let q = 0; q < panel.count; q++) into[at + q] += value * shares[q];
+      });
+    }
+  }
+}
+
+/** (points) Lagrange polynomials of a panel's points at one of its lags. */
+export function sharesOf({ from, to, count }: Panel, lag: number, out: Float64Array): void {
+  const x = to - 1 === from ? 0 : (2 * lag - (from + to - 1)) / (to - 1 - from);
+  let sum = 0;
+  for (let q = 0; q < count; q++) {
+    const away = x - chebyshev(q, count);
+    if (Math.abs(away) < 1e-14) {
+      out.fill(0);
+      out[q] = 1;
+      return;
+    }
+    out[q] = ((q % 2 === 0 ? 1 : -1) * Math.sin((Math.PI * (q + 0.5)) / count)) / away;
+    sum += out[q];
+  }
+  for (let q = 0; q < count; q++) out[q] /= sum;
+}

@@ -1,0 +1,225 @@
+/**
+ * Keeps the books of runs: lagged products, level sums, heads and ends, of one run after another as its ticks come. What is
+ * in is weighted as of the newest tick; time that passes makes all of it lighter. A run as short as the longest horizon
+ * teaches nothing and leaves no trace.
+ */
+import type { OpenRun, RunEnd, RunSums } from './factors.ts';
+import { type LagGrid, spreadOver } from './lag-grid.ts';
+import { LagSums, longestTransform } from './lag-sums.ts';
+import { addHeads, addLevels, type BlockOfRun, emptySums, type MutableSums, scaleSums } from './run-sums.ts';
+
+/** Sizes of the books. */
+export interface BookShape {
+  readonly channels: number;
+  readonly grid: LagGrid;
+  readonly reach: number;
+  readonly longestHorizon: number;
+  readonly halfLifeTicks: number | null;
+  /** Ends of runs that are kept. */
+  readonly mostEnds: number;
+}
+
+/** What is in, as of the newest tick. */
+export interface Books {
+  readonly sums: RunSums;
+  readonly ends: readonly RunEnd[];
+  readonly open: OpenRun | null;
+}
+
+/** The books while they are written. */
+export class RunBook {
+  readonly #shape: BookShape;
+  readonly #blockTicks: number;
+  readonly #lags: LagSums;
+  readonly #sums: MutableSums;
+  #ends: RunEnd[];
+  /** (nc) of (reach + block): changes of the open run, the newest last; `#filled` of them, the last `#fresh` not yet summed. */
+  readonly #changes: Float64Array[];
+  readonly #levels: Float64Array[];
+  #filled = 0;
+  #fresh = 0;
+  #isThere: Uint8Array | null = null;
+  /** Ticks of the open run, its first included. */
+  #ticks = 0;
+  /** (nc) u at the last tick. */
+  #level: Float64Array;
+  /** (nc) u at the first tick. */
+  #first: Float64Array;
+
+  constructor(shape: BookShape, from: Books | null) {
+    const { channels, grid, reach } = shape;
+    this.#shape = shape;
+    const size = longestTransform(reach);
+    this.#blockTicks = Math.max(size - reach, shape.longestHorizon + 2);
+    this.#lags = new LagSums(channels, reach);
+    this.#sums = emptySums(channels, grid.lags.length, shape.longestHorizon, from?.sums ?? null);
+    this.#ends = [...(from?.ends ?? [])];
+    const room = reach + this.#blockTicks;
+    this.#changes = Array.from({ length: channels }, () => new Float64Array(room));
+    this.#levels = Array.from({ length: channels }, () => new Float64Array(room));
+    this.#level = new Float64Array(channels);
+    this.#first = new Float64Array(channels);
+    if (from?.open) this.#goOn(from.open);
+  }
+
+  /** Opens a run, or goes on with the open one where the same channels are there. `isThere` (nc). */
+  open(isThere: Uint8Array): void {
+    if (this.#isThere?.every((flag, c) => flag === isThere[c])) return;
+    this.close();
+    this.#isThere = isThere.slice();
+  }
+
+  /** The open run's next ticks: u (nc) of at least `to`, from <= t < to, zeros where a channel is not there. */
+  take(u: readonly Float64Array[], from: number, to: number): void {
+    for (let t = from; t < to; ) {
+      if (this.#fresh === this.#blockTicks) this.#sumUp();
+      this.#makeRoom();
+      const count = Math.min(to - t, this.#blockTicks - this.#fresh, this.#changes[0].length - this.#filled);
+      for (let c = 0; c < u.length; c++) this.#takeChannel(u[c], c, t, count);
+      this.#filled += count;
+      this.#fresh += count;
+      this.#ticks += count;
+      t += count;
+    }
+  }
+
+  /** Ends the open run, if there is one. */
+  close(): void {
+    if (this.#isThere === null) return;
+    const isKept = this.#sumUp();
+    if (isKept) {
+      this.#ends.push(this.#endOfRun());
+      if (this.#ends.length > this.#shape.mostEnds) this.#ends.shift();
+    }
+    this.#isThere = null;
+    this.#ticks = 0;
+    this.#filled = 0;
+    this.#fresh = 0;
+  }
+
+  /** Lets time pass in which nothing was read; no run may be open. */
+  pass(ticks: number): void {
+    this.#age(ticks);
+  }
+
+  /** All of it so far; the open run goes on. */
+  read(): Books {
+    const isKept = this.#isThere !== null && this.#sumUp();
+    const { grid } = this.#shape;
+    const places = grid.lags.length;
+    this.#lags.drain((pair, lags) => {
+      spreadOver(grid, this.#sums.lagged.subarray(pair * places, (pair + 1) * places), [lags]);
+    });
+    const ends = isKept ? [...this.#ends, this.#endOfRun()] : this.#ends;
+    return { sums: this.#sums.copy(), ends: [...ends], open: this.#openRun() };
+  }
+
+  #takeChannel(values: Float64Array, c: number, from: number, count: number): void {
+    const changes = this.#changes[c];
+    const levels = this.#levels[c];
+    const at = this.#filled;
+    if (this.#ticks === 0) this.#first[c] = values[from];
+    let last = this.#ticks === 0 ? values[from] : this.#level[c];
+    for (let k = 0; k < count; k++) {
+      const value = values[from + k];
+      changes[at + k] = value - last;
+      levels[at + k] = value;
+      last = value;
+    }
+    this.#level[c] = last;
+  }
+
+  /** Keeps the last `reach` changes in front of what comes. */
+  #makeRoom(): void {
+    const { reach } = this.#shape;
+    if (this.#filled < this.#changes[0].length) return;
+    const drop = this.#filled - reach - this.#fresh;
+    for (const row of [...this.#changes, ...this.#levels]) row.copyWithin(0, drop, this.#filled);
+    this.#filled -= drop;
+  }
+
+  /** Sums up what is fresh; false where the run is too short to count, and stays fresh. */
+  #sumUp(): boolean {
+    const { channels, longestHorizon, halfLifeTicks, reach } = this.#shape;
+    if (this.#ticks < longestHorizon + 2) return false;
+    const count = this.#fresh;
+    if (count === 0) return true;
+    this.#age(count);
+    const start = this.#filled - count;
+    const weights = halfLifeTicks === null ? null : ageWeights(count, halfLifeTicks);
+    const block: BlockOfRun = {
+      changes: this.#changes.map((row) => row.subarray(start, this.#filled)),
+      levels: this.#levels.map((row) => row.subarray(start, this.#filled)),
+      weights,
+      // A run's first tick has a level but no change; it counts as a head only.
+      firstTick: this.#ticks - count,
+      first: this.#first,
+      isThere: this.#isThere!,
+    };
+    addLevels(this.#sums, block, channels);
+    if (block.firstTick === 0) addHeads(this.#sums, block, channels, longestHorizon);
+    const before = Math.min(start, reach);
+    const earlier = this.#changes.map((row) => row.subarray(start - before, this.#filled));
+    const later =
+      weights === null ? block.changes : block.changes.map((row) => row.map((value, k) => value * weights[k]));
+    this.#lags.add(earlier, later);
+    this.#fresh = 0;
+    return true;
+  }
+
+  #age(ticks: number): void {
+    const { halfLifeTicks } = this.#shape;
+    if (halfLifeTicks === null || ticks === 0) return;
+    const factor = 2 ** (-ticks / halfLifeTicks);
+    this.#lags.scale(factor);
+    scaleSums(this.#sums, factor);
+    this.#ends = this.#ends.map((end) => ({ ...end, weight: end.weight * factor }));
+  }
+
+  #endOfRun(): RunEnd {
+    const { grid, reach, channels } = this.#shape;
+    const changes = new Float64Array(channels * grid.lags.length);
+    const from = Math.max(0, this.#filled - reach - 1);
+    spreadOver(
+      grid,
+      changes,
+      this.#changes.map((row) => row.slice(from, this.#filled).reverse()),
+    );
+    return { weight: 1, isThere: this.#isThere!.slice(), level: this.#level.slice(), changes };
+  }
+
+  #openRun(): OpenRun | null {
+    if (this.#isThere === null || this.#ticks === 0) return null;
+    const kept = Math.min(this.#filled, Math.max(this.#shape.reach, this.#fresh));
+    return {
+      isThere: this.#isThere.slice(),
+      ticks: this.#ticks,
+      level: this.#level.slice(),
+      changes: this.#changes.map((row) => row.slice(this.#filled - kept, this.#filled)),
+    };
+  }
+
+  #goOn(open: OpenRun): void {
+    const isKept = open.ticks >= this.#shape.longestHorizon + 2;
+    if (isKept) this.#ends.pop();
+    this.#isThere = open.isThere.slice();
+    this.#ticks = open.ticks;
+    this.#level = open.level.slice();
+    this.#filled = open.changes[0].length;
+    this.#fresh = isKept ? 0 : this.#filled;
+    open.changes.forEach((row, c) => {
+      this.#changes[c].set(row);
+      let level = open.level[c];
+      for (let k = row.length - 1; k >= 0; k--) {
+        this.#levels[c][k] = level;
+        level -= row[k];
+      }
+      this.#first[c] = level;
+    });
+  }
+}
+
+/** (count) weights by age, the newest one. */
+function ageWeights(count: number, halfLifeTicks: number): Float64Array {
+  return Float64Array.from({ length: count }, (_, k) => 2 ** (-(count - 1 - k) / halfLifeTicks));
+}
