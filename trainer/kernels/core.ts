@@ -44,10 +44,10 @@ export interface ProductLoops {
 
 /** Small triangular blocks. */
 export interface TriangularLoops {
-  factorBlock(a: Pointer, stride: number, n: number): number;
-  lowerBlock(l: Pointer, lStride: number, b: Pointer, bStride: number, n: number, m: number): void;
-  upperBlock(l: Pointer, lStride: number, b: Pointer, bStride: number, n: number, m: number): void;
-  rightBlock(r: Pointer, rStride: number, a: Pointer, aStride: number, n: number, rows: number): void;
+  factorBlock(a: Pointer, stride: number, n: number, upper: Pointer): number;
+  lowerBlock(l: Pointer, lStride: number, b: Pointer, bStride: number, n: number, m: number, tile: Pointer): void;
+  upperBlock(l: Pointer, lStride: number, b: Pointer, bStride: number, n: number, m: number, tile: Pointer): void;
+  rightBlock(r: Pointer, rStride: number, a: Pointer, aStride: number, n: number, rows: number, tile: Pointer): void;
 }
 
 /** Passes of the Fourier transform. */

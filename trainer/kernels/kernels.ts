@@ -182,11 +182,11 @@ class MemoryKernels implements Kernels {
   }
 
   solveLower(l: Float64Array, b: Float64Array, n: number, m: number): void {
-    lowerSolve(this.#core, this.#scratch, this.#at(l, n * n), this.#at(b, n * m), n, m);
+    lowerSolve(this.#core, this.#scratch, this.#turned, this.#at(l, n * n), this.#at(b, n * m), n, m);
   }
 
   solveUpper(l: Float64Array, b: Float64Array, n: number, m: number): void {
-    upperSolve(this.#core, this.#scratch, this.#at(l, n * n), this.#at(b, n * m), n, m);
+    upperSolve(this.#core, this.#scratch, this.#turned, this.#at(l, n * n), this.#at(b, n * m), n, m);
   }
 
   qr(a: Float64Array, rows: number, columns: number, r: Float64Array): void {

@@ -33,10 +33,10 @@ export function factorTall(work: Workspace, a: Float64Array, r: Float64Array, ro
   const copy = new Float64Array(work.arena.buffer, work.arena.takeRaw(8 * columns * columns), columns * columns);
   const first = cholesky(work, a, r, rows, columns);
   if (first) {
-    rightSolve(work.core, work.scratch, r.byteOffset, a.byteOffset, columns, rows);
+    rightSolve(work.core, work.scratch, work.turned, r.byteOffset, a.byteOffset, columns, rows);
     if (!cholesky(work, a, copy, rows, columns))
       throw new RangeError('A factor of a well-conditioned block is singular.');
-    rightSolve(work.core, work.scratch, copy.byteOffset, a.byteOffset, columns, rows);
+    rightSolve(work.core, work.scratch, work.turned, copy.byteOffset, a.byteOffset, columns, rows);
     multiplyUpper(copy, r, columns);
   } else {
     r.fill(0);

@@ -13,7 +13,7 @@ import type { TriangularLoops } from './core.ts';
 export function scalarTriangular(buffer: ArrayBuffer): TriangularLoops {
   const heap = new Float64Array(buffer);
   return {
-    factorBlock: (a, stride, n) => factor(heap, a / 8, stride, n),
+    factorBlock: (a, stride, n, upper) => factor(heap, a / 8, stride, n, upper / 8),
     lowerBlock(l, lStride, b, bStride, n, m) {
       for (let i = 0; i < n; i++) {
         const to = b / 8 + i * bStride;
@@ -43,33 +43,17 @@ export function scalarTriangular(buffer: ArrayBuffer): TriangularLoops {
   };
 }
 
-function factor(heap: Float64Array, a: number, stride: number, n: number): number {
-  for (let i = 0; i < n; i++) {
-    const row = a + i * stride;
-    for (let j = 0; j <= i; j++) {
-      const other = a + j * stride;
-      const rest = heap[row + j] - dot(heap, row, other, j);
-      if (j < i) {
-        heap[row + j] = rest / heap[other + j];
-        continue;
-      }
-      if (!(rest > 0 && rest < Number.POSITIVE_INFINITY)) return i;
-      heap[row + j] = Math.sqrt(rest);
-    }
+function factor(heap: Float64Array, a: number, stride: number, n: number, upper: number): number {
+  for (let i = 0; i < n; i++) for (let j = 0; j <= i; j++) heap[upper + j * n + i] = heap[a + i * stride + j];
+  for (let k = 0; k < n; k++) {
+    const row = upper + k * n;
+    if (!(heap[row + k] > 0 && heap[row + k] < Number.POSITIVE_INFINITY)) return k;
+    heap[row + k] = Math.sqrt(heap[row + k]);
+    divideRow(heap, row + k + 1, heap[row + k], n - k - 1);
+    for (let i = k + 1; i < n; i++) takeRow(heap, upper + i * n + i, row + i, heap[row + i], n - i);
   }
+  for (let i = 0; i < n; i++) for (let j = 0; j <= i; j++) heap[a + i * stride + j] = heap[upper + j * n + i];
   return -1;
-}
-
-function dot(heap: Float64Array, a: number, b: number, n: number): number {
-  let low = 0;
-  let high = 0;
-  let k = 0;
-  for (; k + 1 < n; k += 2) {
-    low += heap[a + k] * heap[b + k];
-    high += heap[a + k + 1] * heap[b + k + 1];
-  }
-  const sum = low + high;
-  return k < n ? sum + heap[a + k] * heap[b + k] : sum;
 }
 
 function takeRow(heap: Float64Array, to: number, from: number, factor: number, m: number): void {

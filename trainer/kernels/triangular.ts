@@ -7,8 +7,9 @@ import { addProduct, type Factor } from './products.ts';
 
 /** Rows of a block left to the plain loops. */
 const BLOCK = 32;
-/** Bytes of scratch beside that of a product. */
-export const BLOCK_BYTES = 8 * BLOCK * BLOCK;
+/** Bytes of scratch beside that of a product: a block turned over, and eight right-hand sides. */
+export const BLOCK_BYTES = 8 * BLOCK * BLOCK + 64 * BLOCK;
+const tileOf = (turned: Pointer): Pointer => turned + 8 * BLOCK * BLOCK;
 /** Rows solved from the right at a time, so that they stay in the second cache. */
 const RIGHT_ROWS = 256;
 
@@ -41,13 +42,9 @@ export function factorLower(
       const options = { isLower: true, isTaken: true };
       addProduct(core, scratch, at(j, j), n, rowsOf(at(j, 0), n), rowsOf(at(j, 0), n), rows, block, j, options);
     }
-    const bad = core.factorBlock(at(j, j), n, block);
+    const bad = core.factorBlock(at(j, j), n, block, turned);
     if (bad >= 0) return j + bad;
-    if (rows > block) {
-      const upper = new Float64Array(buffer, turned, block * block);
-      for (let i = 0; i < block; i++) for (let k = 0; k <= i; k++) upper[k * block + i] = heap[(j + i) * n + j + k];
-      core.rightBlock(turned, block, at(j + block, j), n, block, rows - block);
-    }
+    core.rightBlock(turned, block, at(j + block, j), n, block, rows - block, tileOf(turned));
   }
   for (let i = 0; i < n; i++) heap.fill(0, i * n + i + 1, (i + 1) * n);
   return -1;
@@ -62,13 +59,21 @@ export function factorLower(
  * source  Golub & Van Loan (2013), section 3.1.3
  * cost    n² m / 2 multiplications
  */
-export function lowerSolve(core: Core, scratch: Pointer, l: Pointer, b: Pointer, n: number, m: number): void {
+export function lowerSolve(
+  core: Core,
+  scratch: Pointer,
+  turned: Pointer,
+  l: Pointer,
+  b: Pointer,
+  n: number,
+  m: number,
+): void {
   for (let i = 0; i < n; i += BLOCK) {
     const block = Math.min(BLOCK, n - i);
     const to = b + 8 * i * m;
     const options = { isTaken: true };
     if (i > 0) addProduct(core, scratch, to, m, rowsOf(l + 8 * i * n, n), columnsOf(b, m), block, m, i, options);
-    core.lowerBlock(l + 8 * (i * n + i), n, to, m, block, m);
+    core.lowerBlock(l + 8 * (i * n + i), n, to, m, block, m, tileOf(turned));
   }
 }
 
@@ -81,7 +86,15 @@ export function lowerSolve(core: Core, scratch: Pointer, l: Pointer, b: Pointer,
  * source  Golub & Van Loan (2013), section 3.1.3
  * cost    n² m / 2 multiplications
  */
-export function upperSolve(core: Core, scratch: Pointer, l: Pointer, b: Pointer, n: number, m: number): void {
+export function upperSolve(
+  core: Core,
+  scratch: Pointer,
+  turned: Pointer,
+  l: Pointer,
+  b: Pointer,
+  n: number,
+  m: number,
+): void {
   for (let i = Math.floor((n - 1) / BLOCK) * BLOCK; i >= 0; i -= BLOCK) {
     const block = Math.min(BLOCK, n - i);
     const next = i + block;
@@ -91,7 +104,7 @@ export function upperSolve(core: Core, scratch: Pointer, l: Pointer, b: Pointer,
       const right = columnsOf(b + 8 * next * m, m);
       addProduct(core, scratch, to, m, left, right, block, m, n - next, { isTaken: true });
     }
-    core.upperBlock(l + 8 * (i * n + i), n, to, m, block, m);
+    core.upperBlock(l + 8 * (i * n + i), n, to, m, block, m, tileOf(turned));
   }
 }
 
@@ -104,7 +117,15 @@ export function upperSolve(core: Core, scratch: Pointer, l: Pointer, b: Pointer,
  * source  Golub & Van Loan (2013), section 3.1.3
  * cost    rows n² / 2 multiplications
  */
-export function rightSolve(core: Core, scratch: Pointer, r: Pointer, a: Pointer, n: number, rows: number): void {
+export function rightSolve(
+  core: Core,
+  scratch: Pointer,
+  turned: Pointer,
+  r: Pointer,
+  a: Pointer,
+  n: number,
+  rows: number,
+): void {
   for (let i = 0; i < rows; i += RIGHT_ROWS) {
     const some = Math.min(RIGHT_ROWS, rows - i);
     const from = a + 8 * i * n;
@@ -113,7 +134,7 @@ export function rightSolve(core: Core, scratch: Pointer, r: Pointer, a: Pointer,
       const to = from + 8 * j;
       const options = { isTaken: true };
       if (j > 0) addProduct(core, scratch, to, n, rowsOf(from, n), columnsOf(r + 8 * j, n), some, block, j, options);
-      core.rightBlock(r + 8 * (j * n + j), n, to, n, block, some);
+      core.rightBlock(r + 8 * (j * n + j), n, to, n, block, some, tileOf(turned));
     }
   }
 }
