@@ -6,3 +6,4 @@ export { loadHistory } from './history/load.ts';
 export { designBank, featureCount } from './identify/bank.ts';
 export { fitWindowRidge } from './judge/window-ridge.ts';
 export { FIT_DEFAULTS, type FitResult, fit } from './pipeline.ts';
+export { bundleWork, memoryWork, timeWork, type Work } from './sizing/fit-work.ts';

@@ -56,7 +56,7 @@ function fromFile(path: string): FleetSite[] {
   const base = dirname(path);
   return parseFleetFile(text, path).map(({ site, history, options, line }) => {
     const siteFile = resolveFrom(base, site);
-    const found = history.map((one) => ({ one, files: matchFiles(base, one) }));
+    const found = history.map((one) => ({ one, files: matchFiles(base, one).flatMap(inFolder) }));
     const empty = found.find(({ files }) => files.length === 0);
     const problem =
       empty === undefined
@@ -64,6 +64,12 @@ function fromFile(path: string): FleetSite[] {
         : `${path}:${line}: history: expected files that match ${JSON.stringify(empty.one)}, got none; mend the pattern`;
     return entry(siteFile, [...new Set(found.flatMap(({ files }) => files))], options, problem);
   });
+}
+
+/** A folder stands for the history files in and below it. */
+function inFolder(path: string): string[] {
+  if (!statSync(path, { throwIfNoEntry: false })?.isDirectory()) return [path];
+  return filesBelow(path).filter((file) => HISTORY_NAME.test(file));
 }
 
 function resolveFrom(base: string, path: string): string {

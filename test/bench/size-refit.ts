@@ -1,0 +1,67 @@
+/**
+ * Measures the constants of trainer/sizing/constants.ts anew and prints them: `npm run build && node test/bench/dist/size-refit.js`.
+ * The shapes are others than those that the bench then holds the foreseen against.
+ */
+import { bundleWork, memoryWork, timeWork, type Work } from '@stillwell/trainer';
+import { leastRelative } from './least-relative.ts';
+import type { SizeShape } from './size-plant.ts';
+import { runShape, type SizeRun } from './size-runs.ts';
+
+const SHAPES: readonly SizeShape[] = [
+  { signals: 1, ticks: 3000, horizon: 12 },
+  { signals: 3, ticks: 6000, horizon: 36 },
+  { signals: 6, ticks: 4000, horizon: 24 },
+  { signals: 12, ticks: 8000, horizon: 36 },
+  { signals: 20, ticks: 6000, horizon: 18 },
+  { signals: 1, ticks: 40_000, horizon: 48 },
+  { signals: 4, ticks: 30_000, horizon: 72 },
+  { signals: 4, ticks: 90_000, horizon: 36 },
+  { signals: 10, ticks: 50_000, horizon: 36 },
+  { signals: 16, ticks: 90_000, horizon: 24 },
+  { signals: 20, ticks: 40_000, horizon: 36 },
+  { signals: 1, ticks: 400_000, horizon: 36 },
+  { signals: 4, ticks: 200_000, horizon: 48 },
+  { signals: 6, ticks: 700_000, horizon: 36 },
+  { signals: 12, ticks: 250_000, horizon: 24 },
+];
+const REPEATS = 2;
+
+const words = (name: string, prices: Work): string =>
+  `export const ${name}: Work = {\n${Object.entries(prices)
+    .map(([key, price]) => `  ${key}: ${Number(price.toPrecision(4))},\n`)
+    .join('')}};\n`;
+
+const runs: SizeRun[] = [];
+for (const shape of SHAPES) {
+  const run = await runShape(shape, REPEATS);
+  runs.push(run);
+  process.stderr.write(
+    `${JSON.stringify(shape)} ${run.seconds.toFixed(2)} s ${(run.peakBytes / 1e6).toFixed(0)} MB ${run.bundleBytes} probe ${run.foreseen.probe_seconds.toFixed(4)}\n`,
+  );
+}
+const PROBE = Math.min(...runs.map(({ foreseen }) => foreseen.probe_seconds));
+const fitted = (name: string, work: (run: SizeRun) => Work, came: (run: SizeRun) => number): string => {
+  const { prices, worst } = leastRelative(runs.map(work), runs.map(came));
+  process.stderr.write(`${name}: worst ${worst.toFixed(3)} times off\n`);
+  return words(name, prices);
+};
+process.stdout.write(
+  [
+    `export const PROBE_SECONDS = ${PROBE.toPrecision(3)};\n`,
+    fitted(
+      'SECONDS',
+      ({ foreseen }) => timeWork(foreseen.fit.shape),
+      ({ seconds, foreseen }) => seconds * (PROBE / foreseen.probe_seconds),
+    ),
+    fitted(
+      'BYTES',
+      ({ foreseen }) => memoryWork(foreseen.fit.shape),
+      ({ peakBytes }) => peakBytes,
+    ),
+    fitted(
+      'BUNDLE',
+      ({ foreseen }) => bundleWork(foreseen.fit.shape),
+      ({ bundleBytes }) => bundleBytes,
+    ),
+  ].join('\n'),
+);
