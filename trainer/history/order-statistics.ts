@@ -25,6 +25,12 @@ function select(a: Float64Array, k: number, from: number, to: number): void {
   }
 }
 
+/** The k-th smallest, counted from 0, of numbers without NaN; they are moved about. */
+export function smallest(values: Float64Array, k: number): number {
+  select(values, k, 0, values.length - 1);
+  return values[k];
+}
+
 /** The numbers among the values, in a new array. */
 export function present(values: Float64Array): Float64Array {
   const kept = new Float64Array(values.length);

@@ -12,14 +12,15 @@ import { conformalRadius } from './coverage.ts';
 import { learnCrossing } from './crossing-table.ts';
 import type { AskedLimit } from './crossings.ts';
 import { settleGuard } from './guard.ts';
-import { replayPaths } from './replay.ts';
+import { type PathMoment, replayPaths, type Standing } from './replay.ts';
 import { robustScale } from './robust-scale.ts';
 
 /** Origins used are thinned to about this many: more does not move a 90 % quantile. */
 const MOST_ORIGINS = 4000;
 
 /**
- * Calibrates. `limits` are those that the site declares, null where crossings need not be looked at.
+ * Calibrates. `limits` are those that the site declares, null where crossings need not be looked at; `standing` is the
+ * model warmed up on what lies before the span, for replays to go on from.
  *
  * shapes  model before calibration (its guard open); span of indices into the series
  * units   standardised; limits in the signals' units
@@ -33,6 +34,7 @@ export function calibrate(
   span: TickSpan,
   coverage: number,
   limits: readonly AskedLimit[] | null = null,
+  standing?: Standing,
 ): Calibration {
   const { signalCount: ny, channelCount: nc, horizon: H } = model;
   const ticks = span.toTick - span.fromTick;
@@ -46,7 +48,7 @@ export function calibrate(
     const clipped = Math.min(model.clipHigh[i], Math.max(model.clipLow[i], series.values[i][at + h]));
     return (clipped - median[i * H + Math.min(h, H) - 1]) / model.scale[i];
   };
-  replayPaths(model, series, { fromTick: span.fromTick - 1, toTick: span.toTick - 1 }, ({ at, state, median }) => {
+  const compare = ({ at, state, median }: PathMoment): void => {
     if (series.excluded?.isExcluded[at] === 1) return;
     const k = at - span.fromTick + 1;
     for (let c = ny; c < nc; c++)
@@ -60,7 +62,8 @@ export function calibrate(
         if (!Number.isNaN(size)) sizes[i * H + h - 1][counts[i * H + h - 1]++] = size;
       }
     }
-  });
+  };
+  replayPaths(model, series, { fromTick: span.fromTick - 1, toTick: span.toTick - 1 }, compare, { standing });
   const residualScale = Float64Array.from(first, (errors, c) =>
     robustScale(errors.map(Math.abs), model.latticeStep[c] / model.scale[c]),
   );
@@ -71,7 +74,8 @@ export function calibrate(
   });
   const bounds = { residualScale, radius, boundsLongRate: LONG_RATE };
   const guard = settleGuard({ ...model, ...bounds }, series, span, first, second);
-  const crossing = limits === null ? {} : learnCrossing({ ...model, ...bounds, ...guard }, series, span, limits);
+  const crossing =
+    limits === null ? {} : learnCrossing({ ...model, ...bounds, ...guard }, series, span, limits, standing);
   return { ...bounds, ...guard, ...crossing };
 }
 

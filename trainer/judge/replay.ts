@@ -16,6 +16,7 @@ import {
 } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
 import type { TickSpan } from '../span.ts';
+import { scoreEvery } from './origin-budget.ts';
 import type { Planner } from './plan-trial.ts';
 
 /** What the filter has to say after a tick; the arrays are overwritten at the next. */
@@ -35,12 +36,17 @@ export interface Moment extends PathMoment {
   readonly upper: Float64Array;
 }
 
+/** Before a long span, bounds are tracked over this many ticks of the warm-up, by when they no longer show their start. */
+const MOST_TRACKED = 6000;
+
 /** What a replay with bounds may be asked beside its paths. */
 export interface ReplayOptions {
   /** Null: nothing is planned. */
   readonly planner?: Planner | null;
   /** At which indices `lower` and `upper` are worked out; at the others they are left as they were. All by default. */
   readonly wantsBounds?: (at: number) => boolean;
+  /** From where the filter goes on, in place of warming up once more; the bounds start there as calibrated. */
+  readonly standing?: Standing | undefined;
 }
 
 /**
@@ -56,12 +62,15 @@ export function replay(
   series: Series,
   span: TickSpan,
   visit: (moment: Moment) => void,
-  { planner = null, wantsBounds = () => true }: ReplayOptions = {},
+  { planner = null, wantsBounds = () => true, standing }: ReplayOptions = {},
 ): void {
   const bounds: Bounds = createBounds(model);
   const lower = new Float64Array(model.signalCount * model.horizon);
   const upper = new Float64Array(lower.length);
-  run(model, series, span, { planner, isVisited: () => true }, (at, state, median) => {
+  const isLong = scoreEvery(span.toTick - span.fromTick) > 1;
+  const trackedFrom = isLong ? span.fromTick - MOST_TRACKED : Number.NEGATIVE_INFINITY;
+  run(model, series, span, { planner, isVisited: (at) => at >= trackedFrom, standing }, (at, state, median) => {
+    if (at < trackedFrom) return;
     trackBounds(model, bounds, state, median);
     if (at < span.fromTick) return;
     if (wantsBounds(at)) intervalOf(model, bounds, state, median, lower, upper);
@@ -126,6 +135,13 @@ function startOf(model: Model, span: TickSpan): number {
   return Math.max(0, span.fromTick - Math.max(model.warmupTicks, settlingTicksOf(model)));
 }
 
+/** A copy of a standing filter; where the model counts repeated readings and that one did not, it begins to. */
+function goingOn(model: Model, standing: Standing): FilterState {
+  const state = structuredClone(standing.state);
+  if (model.stuck === undefined || state.repeats.length > 0) return state;
+  return { ...state, repeats: new Int32Array(model.signalCount), repeated: new Float64Array(model.signalCount) };
+}
+
 function take(model: Model, state: FilterState, series: Series, at: number, readings: Float64Array): void {
   for (let c = 0; c < readings.length; c++) readings[c] = series.values[c][at];
   update(model, state, series.firstTick + at, readings);
@@ -146,7 +162,7 @@ function run(
   },
   each: (at: number, state: FilterState, median: Float64Array) => void,
 ): void {
-  const state = standing === undefined ? createState(model) : structuredClone(standing.state);
+  const state = standing === undefined ? createState(model) : goingOn(model, standing);
   const median = new Float64Array(model.signalCount * model.horizon);
   const readings = new Float64Array(model.channelCount);
   const plan = new Float64Array((model.channelCount - model.signalCount) * model.horizon);

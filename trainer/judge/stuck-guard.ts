@@ -8,22 +8,25 @@ import type { Model, StuckGuard } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
 import { withoutStuck } from '../identify/stuck.ts';
 import type { TickSpan } from '../span.ts';
-import { replayPaths } from './replay.ts';
+import { type PathMoment, replayPaths, type Standing } from './replay.ts';
 import { verdictSteps } from './steps.ts';
 
 /** Rise of either squared error that is put up with, on geometric average over the signals. */
 const MOST_COST = 0.001;
 /** Fall of the squared error with sensors that hang from which the guard acts. */
 const LEAST_GAIN = 0.005;
-/** Ticks replayed at most, the last ones. */
-const MOST_TICKS = 20_000;
+/**
+ * Ticks replayed at most, the first ones. Each of eight signals hangs for six hundred of them, some twenty times; the gain
+ * that is asked for is a two-hundredth, and a guard that gains is seen to gain tens of times that.
+ */
+const MOST_TICKS = 6000;
 /** Made to hang for one tick in so many. */
 const ONE_IN = 10;
 
 /**
  * The guard, or undefined where no signal can be told to stand still.
  *
- * shapes  model calibrated, without that guard; span of indices into the series
+ * shapes  model calibrated, without that guard; span of indices into the series; standing as in `calibrate`
  * units   as the series
  * throws  FilterError if the model does not fit the series
  * source  own choice
@@ -34,14 +37,15 @@ export function settleStuck(
   series: Series,
   span: TickSpan,
   found: Omit<StuckGuard, 'acts'>,
+  standing?: Standing,
 ): StuckGuard | undefined {
   if (found.ticks.every((ticks) => ticks === 0)) return undefined;
-  const within = { fromTick: Math.max(span.fromTick, span.toTick - MOST_TICKS), toTick: span.toTick };
+  const within = { fromTick: span.fromTick, toTick: Math.min(span.toTick, span.fromTick + MOST_TICKS) };
   const acting = { ...found, acts: true };
   const believed = withoutStuck(series, found);
   const risesBy = (seen: Series): { readonly all: number; readonly believed: number } => {
-    const without = squares(model, seen, series, believed, within);
-    const guarded = squares({ ...model, stuck: acting }, seen, series, believed, within);
+    const without = squares(model, seen, series, believed, within, standing);
+    const guarded = squares({ ...model, stuck: acting }, seen, series, believed, within, standing);
     return { all: rise(guarded.all, without.all), believed: rise(guarded.believed, without.believed) };
   };
   const acts =
@@ -101,11 +105,12 @@ function squares(
   truth: Series,
   believed: Series,
   span: TickSpan,
+  standing: Standing | undefined,
 ): { readonly all: Float64Array; readonly believed: Float64Array } {
   const { signalCount: ny, horizon: H } = model;
   const out = { all: new Float64Array(ny), believed: new Float64Array(ny) };
   const steps = verdictSteps(H);
-  replayPaths(model, seen, { fromTick: span.fromTick, toTick: span.toTick }, ({ at, median }) => {
+  const compare = ({ at, median }: PathMoment): void => {
     for (let i = 0; i < ny; i++) {
       for (const h of steps) {
         if (at + h >= span.toTick) break;
@@ -115,6 +120,7 @@ function squares(
         if (!Number.isNaN(believed.values[i][at + h])) out.believed[i] += error * error;
       }
     }
-  });
+  };
+  replayPaths(model, seen, span, compare, { standing });
   return out;
 }
