@@ -70,8 +70,8 @@ describe('a scene of two causes in noise', () => {
     expect(times[0]).toBe('2026-03-01T00:00:15.000Z');
     expect(times.at(-1)).toBe('2026-03-01T00:24:59.000Z');
     for (const cause of causes) expect(explained(cause.slice(15), values)).toBeGreaterThan(0.85);
-    // The mean frame errs by causes and noise, the newest frame held by noise twice at least: most of that is saved.
-    expect(said.skill).toBeGreaterThan(0.2);
+    // The mean frame errs by the causes, the newest frame held by noise twice: some of both is saved.
+    expect(said.skill).toBeGreaterThan(0.1);
     expect(readdirSync(out).sort()).toEqual(['condenser.swn', 'report.html', 'states.csv']);
     const page = readFileSync(join(out, 'report.html'), 'utf8');
     for (const words of [
