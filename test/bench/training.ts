@@ -3,6 +3,7 @@
  * longer groups run when they are asked for by name.
  */
 import { type BenchOptions, isWanted, type Row } from './harness.ts';
+import { sizeRows } from './size-rows.ts';
 import { growthRows } from './training-growth.ts';
 import { historyRows } from './training-history.ts';
 import { refitRows } from './training-refit.ts';
@@ -19,6 +20,7 @@ const GROUPS: readonly Group[] = [
   { name: 'history', rows: historyRows },
   { name: 'growth', rows: growthRows },
   { name: 'refit', rows: refitRows },
+  { name: 'size', rows: sizeRows },
 ];
 
 /** Rows of the suite. */
