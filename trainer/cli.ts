@@ -19,6 +19,7 @@ import { sizeCommand } from './commands/size.ts';
 import { surveyCommand } from './commands/survey.ts';
 import { watchCommand } from './commands/watch.ts';
 import { TrainError } from './errors.ts';
+import { INTERRUPTED_CODE, Interrupted } from './history/interrupt.ts';
 
 const commands: readonly (() => Command)[] = [
   keysCommand,
@@ -68,6 +69,7 @@ function report(error: unknown): number {
   if (error instanceof CommanderError) return error.exitCode === 0 ? 0 : 2;
   const message = error instanceof Error ? error.message : String(error);
   process.stderr.write(`stillwell: ${message}\n`);
+  if (error instanceof Interrupted) return INTERRUPTED_CODE;
   if (error instanceof TrainError || error instanceof ProtocolError) return 2;
   if (process.env.STILLWELL_DEBUG && error instanceof Error) process.stderr.write(`${error.stack}\n`);
   return 1;

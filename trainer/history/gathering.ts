@@ -55,14 +55,25 @@ export class Gathering {
     return block;
   }
 
+  /** The block of just these channels: that of the wide file, else of the one channel of a long one, made where it is new. */
+  blockFor(channels: readonly number[]): Block {
+    const key = channels.join(' ');
+    const known = this.#blocks.find(
+      (one) => one.values.flatMap((list, c) => (list === null ? [] : [c])).join(' ') === key,
+    );
+    return known ?? this.#longBlock(channels[0] as number);
+  }
+
+  #longBlock(channel: number): Block {
+    const block = this.#long[channel] ?? this.wideBlock([channel]);
+    this.#long[channel] = block;
+    return block;
+  }
+
   /** Adds one reading of a long file. */
   add(channel: number, timeMs: number, value: number, line: number): void {
     if (timeMs < this.span.fromMs || timeMs >= this.span.untilMs) return;
-    let block = this.#long[channel];
-    if (!block) {
-      block = this.wideBlock([channel]);
-      this.#long[channel] = block;
-    }
+    const block = this.#longBlock(channel);
     block.times.push(timeMs);
     block.values[channel]?.push(value);
     block.lines?.push(line);

@@ -15,7 +15,14 @@ export interface ChannelReadings {
 /** How one file was understood. */
 export interface FileRead {
   readonly file: string;
-  readonly format: 'wide CSV' | 'long CSV' | 'long NDJSON' | 'MQTT capture' | 'desk archive';
+  readonly format:
+    | 'wide CSV'
+    | 'long CSV'
+    | 'long NDJSON'
+    | 'MQTT capture'
+    | 'wide Parquet'
+    | 'long Parquet'
+    | 'desk archive';
   readonly separator: string | null;
   /** Rows or lines with a time, after the header. */
   readonly rows: number;

@@ -2,30 +2,41 @@
  * A history of any length in bounded memory: a short one is loaded as ever; of a long one the newest part is, and what is
  * older streams past once, chunk by chunk, into whoever learns from it.
  */
+import { existsSync } from 'node:fs';
+import { dirname } from 'node:path';
 import type { Site } from '@stillwell/protocol';
 import { TrainError } from '../errors.ts';
 import { channelsOf } from './channels.ts';
-import { firstTimeOf } from './first-time.ts';
+import { ColumnsEngine } from './columns-engine.ts';
+import { findFiles } from './find-files.ts';
 import type { History } from './history.ts';
-import { type InputFile, inspectFile } from './input-file.ts';
+import type { Interrupt } from './interrupt.ts';
 import { type LoadedHistory, prepare } from './load.ts';
 import { CHUNK_TICKS, LONG_FROM, RECENT_TICKS } from './long-limits.ts';
-import { StreamMerge } from './merge.ts';
-import { type OlderFacts, type OlderSink, OlderTicks } from './older.ts';
-import { type ReadOptions, readShort, refuseUnseen } from './read.ts';
-import { type LongLimits, RecentReadings } from './recent.ts';
-import { TextStream } from './text-stream.ts';
-import { TimeReader } from './times.ts';
+import { LongReading } from './long-reading.ts';
+import { LateReading } from './merge.ts';
+import type { OlderFacts, OlderSink } from './older.ts';
+import { type ReadOptions, readShort } from './read.ts';
+import type { LongLimits } from './recent.ts';
+import { type Belongs, digestOfPlain, forgetPlace, identityOf, readPlace } from './saved-place.ts';
 import { checkZone } from './zone.ts';
 
 export type { OlderFacts, OlderSink } from './older.ts';
 
 /** How to read a history that may be long. */
 export interface LongOptions extends ReadOptions {
-  /** File that keeps the place where reading was interrupted; none when absent. */
+  /** File that keeps the place of an interrupted reading; none when absent, and interrupts are then not looked for. */
   readonly resumeFile?: string;
+  /** Folder where sorting may spill; that of `resumeFile`, else the system's temporary one, when absent. */
+  readonly spillIn?: string;
+  /** Told in a sentence when reading goes on from an earlier run, or why it cannot. */
+  readonly say?: (sentence: string) => void;
   /** Where a history counts as long; LONG_FROM and its like when absent. */
   readonly limits?: LongLimits;
+  /** Asked whether to stop; the signals of the process when absent. */
+  readonly interrupt?: Interrupt;
+  /** Time between two savings of the place, ms. */
+  readonly saveEveryMs?: number;
 }
 
 /** A history ready to learn from, whole where it is short, else its newest part. */
@@ -39,12 +50,13 @@ export interface LongHistory extends LoadedHistory {
 const LIMITS: LongLimits = { longFrom: LONG_FROM, recentTicks: RECENT_TICKS, chunkTicks: CHUNK_TICKS };
 
 /**
- * Reads files, globs and folders; lays on ticks and surveys.
+ * Reads files, folders and patterns; lays on ticks and surveys.
  *
  * sinkFor      makes the one who learns from what is older; asked only where the history is long, and again where reading
  *              has to begin anew
  * judgedShare  share of the newest part's ticks, at the end, that will judge
- * throws       TrainError 'file' or 'history' as `loadHistory`, and where readings of a long history are too far out of order
+ * throws       TrainError 'file' or 'history' as `loadHistory`, and where readings of a long history are too far out of
+ *              order; Interrupted where somebody asked to stop, the place saved
  */
 export async function loadLong(
   paths: readonly string[],
@@ -57,54 +69,63 @@ export async function loadLong(
     throw new TrainError('options', 'history: expected at least one file, got none; name them after --history');
   if (options.zone !== null) checkZone(options.zone);
   const limits = options.limits ?? LIMITS;
-  const short = await readShort(paths, site, options, limits.longFrom);
-  if (short !== null) return { ...prepare(short, site, judgedShare), older: null, done: () => {} };
-  return readLong(paths, site, options, limits, sinkFor(), judgedShare);
+  const { resumeFile } = options;
+  const files = findFiles(paths, site.site);
+  const isGoingOn = resumeFile !== undefined && existsSync(resumeFile);
+  const engine = new ColumnsEngine(options.spillIn ?? (resumeFile === undefined ? undefined : dirname(resumeFile)));
+  let read: { readonly history: History; readonly older: OlderFacts | null };
+  try {
+    const short = isGoingOn ? null : await readShort(files, site, options, limits.longFrom, engine);
+    if (short !== null) return { ...prepare(short, site, judgedShare), older: null, done: () => {} };
+    read = await readLong([...new Set(files)], site, { ...options, limits }, sinkFor, engine);
+  } finally {
+    engine.close();
+  }
+  const done = (): void => {
+    if (resumeFile !== undefined) forgetPlace(resumeFile);
+  };
+  return { ...prepare(read.history, site, judgedShare), older: read.older, done };
 }
 
+/** Reads in long mode; Parquet files whose rows turn out to lie too far out of order are sorted in another attempt. */
 async function readLong(
-  paths: readonly string[],
+  files: readonly string[],
   site: Site,
-  options: LongOptions,
-  limits: LongLimits,
-  sink: OlderSink,
-  judgedShare: number,
-): Promise<LongHistory> {
-  const files = new Map(paths.map((path) => [path, inspectFile(path)]));
-  const zone = options.zone ?? (options.requireZone ? null : site.timeZone);
-  const span = {
-    fromMs: options.fromMs ?? Number.NEGATIVE_INFINITY,
-    untilMs: options.untilMs ?? Number.POSITIVE_INFINITY,
-  };
-  const waiting: { path: string; firstMs: number }[] = [];
-  for (const path of paths)
-    waiting.push({ path, firstMs: await firstTimeOf(files.get(path) as InputFile, site, zone) });
-  waiting.sort((a, b) => a.firstMs - b.firstMs || paths.indexOf(a.path) - paths.indexOf(b.path));
-  const times = new TimeReader(zone);
-  const merge = new StreamMerge(
-    waiting,
-    (limits.chunkTicks / 4) * site.tickMs,
-    (path, previous) =>
-      new TextStream(files.get(path) as InputFile, site, span, new TimeReader(zone, times), {
-        state: null,
-        previous: previous?.gathering ?? null,
-      }),
-  );
-  const recent = new RecentReadings(site.tickMs, limits);
-  const older = new OlderTicks(site, sink);
-  const totalBytes = [...files.values()].reduce((sum, { bytes }) => sum + bytes, 0);
-  try {
-    while (await merge.step(recent)) {
-      older.handOn(recent, false);
-      const { rows, bytes } = merge;
-      options.progress?.update(rows, bytes > 0 ? Math.round((rows * totalBytes) / bytes) : null);
+  options: LongOptions & { readonly limits: LongLimits },
+  sinkFor: () => OlderSink,
+  engine: ColumnsEngine,
+): Promise<{ readonly history: History; readonly older: OlderFacts | null }> {
+  const { resumeFile } = options;
+  const belongs = resumeFile === undefined ? null : belongsOf(files, site, options);
+  const place =
+    resumeFile === undefined || belongs === null ? null : readPlace(resumeFile, belongs, options.say ?? (() => {}));
+  const toSort = new Set<string>();
+  for (let from = place; ; from = null) {
+    const reading = new LongReading(files, site, { ...options, toSort, belongs }, sinkFor(), engine);
+    try {
+      await reading.begin(from);
+      await reading.through();
+      return historyOf(reading, site);
+    } catch (cause) {
+      if (!(cause instanceof LateReading) || !reading.canSort(cause.path)) throw cause;
+      toSort.add(cause.path);
+    } finally {
+      await reading.close();
     }
-  } finally {
-    await merge.close();
-    options.progress?.end();
   }
-  refuseUnseen(site, (c) => recent.holds(c), merge.finished);
-  older.handOn(recent, true);
+}
+
+function belongsOf(
+  files: readonly string[],
+  site: Site,
+  { zone, requireZone, fromMs, untilMs, limits }: LongOptions,
+): Belongs {
+  const asked = digestOfPlain([site, zone, requireZone ?? false, fromMs ?? null, untilMs ?? null, limits]);
+  return { asked, files: files.map(identityOf) };
+}
+
+function historyOf(reading: LongReading, site: Site): { readonly history: History; readonly older: OlderFacts | null } {
+  const { recent, merge, times } = reading;
   const fromMs = recent.cutTick * site.tickMs;
   const history: History = {
     channels: recent.channels(channelsOf(site).map(({ name }) => name)),
@@ -113,9 +134,5 @@ async function readLong(
     zone: times.zone,
     clockChanges: times.changes.filter(({ atMs }) => atMs >= fromMs),
   };
-  return {
-    ...prepare(history, site, judgedShare),
-    older: older.facts(merge.rows, merge.outOfOrder),
-    done: () => {},
-  };
+  return { history, older: reading.older.facts(merge.rows, merge.outOfOrder) };
 }

@@ -5,7 +5,7 @@
  */
 import { TrainError } from '../errors.ts';
 import { iso, lengthOf } from './finding.ts';
-import type { Block } from './gathering.ts';
+import type { Block, Gathering } from './gathering.ts';
 import type { GrowingList } from './growing.ts';
 import type { FileRead } from './history.ts';
 import type { ReadingStream } from './reading-stream.ts';
@@ -41,12 +41,13 @@ export class LateReading extends TrainError {
 
 /** Reads files side by side. */
 export class StreamMerge {
-  readonly #open: (path: string, previous: ReadingStream | null) => ReadingStream;
+  readonly #open: (path: string, previous: Gathering | null) => ReadingStream;
   readonly #slackMs: number;
   readonly waiting: WaitingFile[];
   readonly active: OpenFile[] = [];
   readonly finished: FileRead[] = [];
-  #last: ReadingStream | null = null;
+  /** Lists of the file that ended last: the next one may begin inside a doubled hour. */
+  last: Gathering | null = null;
   /** Rows earlier than the row before them in their file. */
   outOfOrder = 0;
 
@@ -57,7 +58,7 @@ export class StreamMerge {
   constructor(
     waiting: readonly WaitingFile[],
     slackMs: number,
-    open: (path: string, previous: ReadingStream | null) => ReadingStream,
+    open: (path: string, previous: Gathering | null) => ReadingStream,
   ) {
     this.waiting = [...waiting];
     this.#slackMs = slackMs;
@@ -102,7 +103,7 @@ export class StreamMerge {
 
   #openNext(): void {
     const { path } = this.waiting.shift() as WaitingFile;
-    this.active.push({ stream: this.#open(path, this.#last), taken: new Map() });
+    this.active.push({ stream: this.#open(path, this.last), taken: new Map() });
   }
 
   /** Every open file has readings at hand; those that ended are put away. */
@@ -117,7 +118,7 @@ export class StreamMerge {
       if (await file.stream.more()) continue;
       if (headOf(file) < Number.POSITIVE_INFINITY) continue;
       this.finished.push(file.stream.account);
-      this.#last = file.stream;
+      this.last = file.stream.gathering;
       this.active.splice(at, 1);
     }
   }

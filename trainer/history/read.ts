@@ -8,7 +8,10 @@ import { nearestName } from '@stillwell/protocol';
 import { TrainError } from '../errors.ts';
 import type { Progress } from '../progress.ts';
 import { channelsOf } from './channels.ts';
+import { ColumnStream } from './column-stream.ts';
+import { ColumnsEngine } from './columns-engine.ts';
 import type { FileReader } from './file-reader.ts';
+import { findFiles } from './find-files.ts';
 import { readerFor } from './format.ts';
 import { Gathering } from './gathering.ts';
 import type { FileRead, History } from './history.ts';
@@ -41,8 +44,19 @@ async function readOne(
   times: TimeReader,
   onBytes: (done: number, rows: number) => void,
   watch: SpanWatch | null,
+  engine: ColumnsEngine,
 ): Promise<FileRead> {
   times.nextFile();
+  if (file.kind === 'Parquet') {
+    const stream = new ColumnStream(file, site, gathering, times, engine, { state: null, previous: null });
+    while (await stream.more()) {
+      onBytes(stream.bytesDone, stream.rows);
+      if (!watch?.isPassed(gathering)) continue;
+      await stream.close();
+      throw new TooLong();
+    }
+    return stream.account;
+  }
   let reader: FileReader | null = null;
   const blocks = readBlocks(file, (done) => onBytes(done, reader?.rows ?? 0));
   for (;;) {
@@ -101,12 +115,17 @@ function listed(names: readonly string[]): string {
 }
 
 /**
- * Reads the files in the order given, as one history.
+ * Reads files, folders and patterns in the order given, as one history.
  *
  * throws  TrainError 'file' or 'history', with file, line and column, at the first thing that cannot be read
  */
 export async function readHistory(files: readonly string[], site: Site, options: ReadOptions): Promise<History> {
-  return readWatched(files, site, options, null);
+  const engine = new ColumnsEngine();
+  try {
+    return await readWatched(files, site, options, null, engine);
+  } finally {
+    engine.close();
+  }
 }
 
 /**
@@ -119,9 +138,10 @@ export async function readShort(
   site: Site,
   options: ReadOptions,
   mostTicks: number,
+  engine: ColumnsEngine,
 ): Promise<History | null> {
   try {
-    return await readWatched(files, site, options, new SpanWatch(site.tickMs, mostTicks));
+    return await readWatched(files, site, options, new SpanWatch(site.tickMs, mostTicks), engine);
   } catch (cause) {
     if (cause instanceof TooLong) return null;
     throw cause;
@@ -129,15 +149,16 @@ export async function readShort(
 }
 
 async function readWatched(
-  files: readonly string[],
+  paths: readonly string[],
   site: Site,
   options: ReadOptions,
   watch: SpanWatch | null,
+  engine: ColumnsEngine,
 ): Promise<History> {
-  if (files.length === 0)
+  if (paths.length === 0)
     throw new TrainError('options', 'history: expected at least one file, got none; name them after --history');
   if (options.zone !== null) checkZone(options.zone);
-  const inputs = files.map(inspectFile);
+  const inputs = findFiles(paths, site.site).map(inspectFile);
   const totalBytes = inputs.reduce((sum, input) => sum + input.bytes, 0);
   const channels = channelsOf(site);
   const gathering = new Gathering(channels.length, {
@@ -163,6 +184,7 @@ async function readWatched(
             options.progress?.update(rowsDone, bytes > 0 ? Math.round((rowsDone * totalBytes) / bytes) : null);
           },
           watch,
+          engine,
         ),
       );
       bytesBefore += input.bytes;

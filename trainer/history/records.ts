@@ -94,7 +94,9 @@ export class RecordScanner {
 
   /** Takes what is left after the last block. */
   end(): void {
-    if (this.#rest.length > 0) this.#scan(this.#rest, 0, true);
+    const rest = this.#rest;
+    this.#rest = new Uint8Array(0);
+    if (rest.length > 0) this.#scan(rest, 0, true);
   }
 
   /** Scans one record from `from`; its end, or -1 where a quoted field runs past the block. */

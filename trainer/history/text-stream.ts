@@ -62,6 +62,7 @@ export class TextStream implements ReadingStream {
   }
 
   async more(): Promise<boolean> {
+    if (this.#account !== null) return false;
     const next = await this.#blocks.next();
     if (next.done) {
       this.#end(next.value.sha256);

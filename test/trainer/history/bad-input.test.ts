@@ -1,5 +1,6 @@
 /** Every refusal of a history file: one line that says where, expected, got, what to do. */
 
+import { mkdirSync } from 'node:fs';
 import { join } from 'node:path';
 import { gzipSync } from 'node:zlib';
 import { afterAll, describe, expect, it } from 'vitest';
@@ -35,9 +36,12 @@ const H = 'time,level,flow\n';
 const ROW = '2024-01-01T00:00:00Z,1.5,2\n2024-01-01T00:01:00Z,1.6,2\n';
 
 describe('what is no history file at all', () => {
-  it('names a missing file, a folder, an empty file, blank lines', async () => {
+  it('names a missing file, a folder without files, an empty file, blank lines', async () => {
     expect(await refusalOf(join(folder.path, 'none.csv'))).toMatch(/there is no such file; check the path/);
-    expect(await refusalOf(folder.path)).toMatch(/got a folder; name the files in it/);
+    const empty = join(folder.path, 'empty');
+    mkdirSync(empty);
+    expect(await refusalOf(empty)).toMatch(/expected history files in this folder \(\.csv.*, got none; check the path/);
+    expect(await refusalOf(join(empty, '*.csv'))).toMatch(/expected history files that match this pattern, got none/);
     expect(await refusalOf(file(''))).toMatch(/got an empty file/);
     expect(await refusalOf(file('\n\n'))).toMatch(/blank lines alone/);
   });

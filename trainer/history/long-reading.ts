@@ -1,0 +1,151 @@
+/** One reading of a long history from its files: begun anew or from a saved place, gone through, saved now and then. */
+import type { Site } from '@stillwell/protocol';
+import { ColumnStream } from './column-stream.ts';
+import type { ColumnsEngine } from './columns-engine.ts';
+import { firstTimeOf } from './first-time.ts';
+import { Gathering, type Span } from './gathering.ts';
+import { type InputFile, inspectFile } from './input-file.ts';
+import { type Interrupt, Interrupted, watchSignals } from './interrupt.ts';
+import type { LongOptions } from './long.ts';
+import { placeOf, takeOut } from './long-place.ts';
+import { StreamMerge } from './merge.ts';
+import { type OlderSink, OlderTicks } from './older.ts';
+import { refuseUnseen } from './read.ts';
+import type { ReadingStream, StreamState } from './reading-stream.ts';
+import { type LongLimits, RecentReadings } from './recent.ts';
+import { type Belongs, type Place, savePlace } from './saved-place.ts';
+import { TextStream } from './text-stream.ts';
+import { TimeReader } from './times.ts';
+
+/** Options of one reading. */
+export interface ReadingSettings extends LongOptions {
+  readonly limits: LongLimits;
+  /** Parquet files whose rows are to be sorted by time. */
+  readonly toSort: ReadonlySet<string>;
+  /** What a saved place belongs to; null where none is kept. */
+  readonly belongs: Belongs | null;
+}
+
+const SAVE_EVERY_MS = 5000;
+const NEVER: Interrupt & { end(): void } = { isAsked: false, end: () => {} };
+
+/** Holds the parts while they are filled. */
+export class LongReading {
+  readonly #site: Site;
+  readonly #settings: ReadingSettings;
+  readonly #sink: OlderSink;
+  readonly #engine: ColumnsEngine;
+  readonly #files: ReadonlyMap<string, InputFile>;
+  readonly #zone: string | null;
+  readonly #span: Span;
+  readonly times: TimeReader;
+  readonly merge: StreamMerge;
+  readonly recent: RecentReadings;
+  readonly older: OlderTicks;
+
+  constructor(paths: readonly string[], site: Site, settings: ReadingSettings, sink: OlderSink, engine: ColumnsEngine) {
+    this.#site = site;
+    this.#settings = settings;
+    this.#sink = sink;
+    this.#engine = engine;
+    this.#files = new Map(paths.map((path) => [path, inspectFile(path)]));
+    this.#zone = settings.zone ?? (settings.requireZone ? null : site.timeZone);
+    this.#span = {
+      fromMs: settings.fromMs ?? Number.NEGATIVE_INFINITY,
+      untilMs: settings.untilMs ?? Number.POSITIVE_INFINITY,
+    };
+    this.times = new TimeReader(this.#zone);
+    this.recent = new RecentReadings(site.tickMs, settings.limits);
+    this.older = new OlderTicks(site, sink);
+    const slackMs = (settings.limits.chunkTicks / 4) * site.tickMs;
+    this.merge = new StreamMerge([], slackMs, (path, previous) => this.#open(path, null, previous));
+  }
+
+  /** True for a file that could be sorted and was not. */
+  canSort(path: string): boolean {
+    return this.#files.get(path)?.kind === 'Parquet' && !this.#settings.toSort.has(path);
+  }
+
+  /** Begins, anew or from a place. */
+  async begin(place: Place | null): Promise<void> {
+    if (place !== null) {
+      takeOut(place, this, this.#sink, (path, state) => this.#open(path, state, null));
+      this.#settings.say?.(`Going on from where reading was interrupted, after ${this.merge.rows} rows.`);
+      return;
+    }
+    const waiting: { path: string; firstMs: number }[] = [];
+    for (const [path, file] of this.#files) waiting.push({ path, firstMs: await this.#firstTime(path, file) });
+    // Files whose first times are equal keep the order they were given in.
+    this.merge.waiting.push(...waiting.sort((a, b) => order(a.firstMs, b.firstMs)));
+  }
+
+  /**
+   * Reads through.
+   *
+   * throws  Interrupted once the place is saved; LateReading; what the files refuse
+   */
+  async through(): Promise<void> {
+    const { belongs, resumeFile, saveEveryMs = SAVE_EVERY_MS } = this.#settings;
+    const own = belongs === null || this.#settings.interrupt !== undefined ? NEVER : watchSignals();
+    const interrupt = this.#settings.interrupt ?? own;
+    let savedMs = performance.now();
+    let isSaved = false;
+    const save = (): void => {
+      if (belongs === null || resumeFile === undefined) return;
+      savePlace(resumeFile, belongs, placeOf(this, this.#sink));
+      savedMs = performance.now();
+      isSaved = true;
+    };
+    try {
+      while (await this.merge.step(this.recent)) {
+        this.older.handOn(this.recent, false);
+        this.#tell();
+        if (interrupt.isAsked) {
+          save();
+          throw new Interrupted();
+        }
+        if (performance.now() - savedMs >= saveEveryMs) save();
+      }
+      // What took long to read is kept until the result is written.
+      if (isSaved) save();
+    } finally {
+      own.end();
+      this.#settings.progress?.end();
+    }
+    refuseUnseen(this.#site, (c) => this.recent.holds(c), this.merge.finished);
+    this.older.handOn(this.recent, true);
+  }
+
+  /** A file that will be sorted may hold earlier times than its first row has: it is opened at once. */
+  async #firstTime(path: string, file: InputFile): Promise<number> {
+    if (this.#settings.toSort.has(path)) return Number.MIN_SAFE_INTEGER;
+    return firstTimeOf(file, this.#site, this.#zone, this.#engine);
+  }
+
+  async close(): Promise<void> {
+    await this.merge.close();
+  }
+
+  #tell(): void {
+    const { rows, bytes } = this.merge;
+    let all = 0;
+    for (const file of this.#files.values()) all += file.bytes;
+    this.#settings.progress?.update(rows, bytes > 0 ? Math.round((rows * all) / bytes) : null);
+  }
+
+  #open(path: string, state: StreamState | null, previous: Gathering | null): ReadingStream {
+    const file = this.#files.get(path) as InputFile;
+    const times = new TimeReader(this.#zone, this.times);
+    const from = { state, previous };
+    if (file.kind !== 'Parquet') return new TextStream(file, this.#site, this.#span, times, from);
+    const channels = this.#site.signals.length + this.#site.inputs.length;
+    const gathering = new Gathering(channels, this.#span, true);
+    return new ColumnStream(
+      ...([file, this.#site, gathering, times, this.#engine, from, this.#settings.toSort.has(path)] as const),
+    );
+  }
+}
+
+function order(a: number, b: number): number {
+  return a === b ? 0 : a - b;
+}
