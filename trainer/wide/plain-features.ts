@@ -4,7 +4,10 @@
  */
 import { checkShape, type FeatureMap, type FeatureShape } from './feature-map.ts';
 import { openRandom } from './random.ts';
-import { writeWaves } from './waves.ts';
+import { workspaceBytes, workspaceOf } from './workspace.ts';
+
+/** Frequencies worked on together. */
+const RUN = 1024;
 
 /**
  * A map whose frequencies are independent normal draws.
@@ -21,23 +24,27 @@ export function plainFeatures(shape: FeatureShape): FeatureMap {
   const { inputs, outputs, width } = shape;
   const pairs = outputs / 2;
   const random = openRandom(shape.seed);
-  const turns = 1 / (2 * Math.PI * width);
-  const frequencies = Float32Array.from({ length: pairs * inputs }, () => turns * random.normal());
-  const phases = new Float32Array(pairs);
+  const frequencies = Float32Array.from({ length: pairs * inputs }, () => random.normal() / width);
+  const workspace = workspaceOf(RUN);
+  const { numbers } = workspace;
   const size = Math.sqrt(1 / pairs);
   const read = new Float32Array(inputs);
   return {
     inputs,
     outputs,
-    bytes: 4 * (frequencies.length + pairs + inputs),
+    bytes: 4 * (frequencies.length + inputs) + workspaceBytes(RUN),
     apply(x, out) {
       for (let k = 0; k < inputs; k++) read[k] = x[k];
-      for (let j = 0, at = 0; j < pairs; j++, at += inputs) {
-        let sum = 0;
-        for (let k = 0; k < inputs; k++) sum += frequencies[at + k] * read[k];
-        phases[j] = sum;
+      for (let from = 0; from < pairs; from += RUN) {
+        const count = Math.min(RUN, pairs - from);
+        for (let j = 0; j < count; j++) {
+          const at = (from + j) * inputs;
+          let sum = 0;
+          for (let k = 0; k < inputs; k++) sum += frequencies[at + k] * read[k];
+          numbers[j] = sum;
+        }
+        workspace.writeWaves(count, size, out, from, pairs);
       }
-      writeWaves(phases, pairs, size, out, 0, pairs);
     },
   };
 }

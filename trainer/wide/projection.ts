@@ -4,8 +4,10 @@
  * sums, means and differences may be taken after it.
  */
 import type { FeatureMap } from './feature-map.ts';
-import { hadamard, powerOfTwo } from './hadamard.ts';
+import { powerOfTwo } from './power-of-two.ts';
 import { openRandom, shuffled } from './random.ts';
+import { drawSigns, flipSigns } from './signs.ts';
+import { workspaceOf } from './workspace.ts';
 
 /** Constructions by name. */
 export const PROJECTION_KINDS = ['hadamard', 'blocks', 'sparse'] as const;
@@ -64,18 +66,20 @@ export function hadamardProjection(shape: ProjectionShape): FeatureMap {
   const n = powerOfTwo(inputs);
   if (outputs > n) throw new RangeError(`outputs: expected at most ${n}, got ${outputs}`);
   const random = openRandom(seed);
-  const signs = Float32Array.from({ length: inputs }, () => random.sign());
+  const signs = drawSigns(random, inputs);
   const taken = shuffled(random, n).slice(0, outputs).sort();
-  const v = new Float32Array(n);
+  const workspace = workspaceOf(n);
+  const { numbers: v, bits } = workspace;
   const scale = 1 / Math.sqrt(outputs);
   return {
     inputs,
     outputs,
     bytes: 4 * (inputs + outputs + n),
     apply(x, out) {
-      for (let k = 0; k < inputs; k++) v[k] = signs[k] * x[k];
+      for (let k = 0; k < inputs; k++) v[k] = x[k];
       v.fill(0, inputs);
-      hadamard(v, 0, n);
+      flipSigns(bits, signs, 0, inputs);
+      workspace.hadamard();
       for (let j = 0; j < outputs; j++) out[j] = scale * v[taken[j]];
     },
   };
@@ -97,10 +101,11 @@ export function blockProjection(shape: ProjectionShape): FeatureMap {
   const n = powerOfTwo(outputs);
   const random = openRandom(seed);
   const blocks = Math.ceil(inputs / n);
-  const before = Float32Array.from({ length: blocks * n }, () => random.sign());
-  const after = Float32Array.from({ length: blocks * n }, () => random.sign());
+  const before = drawSigns(random, blocks * n);
+  const after = drawSigns(random, blocks * n);
   const taken = outputs === n ? null : shuffled(random, n).slice(0, outputs).sort();
-  const v = new Float32Array(n);
+  const workspace = workspaceOf(n);
+  const { numbers: v, bits } = workspace;
   const sum = new Float32Array(n);
   const scale = 1 / Math.sqrt(outputs);
   return {
@@ -111,10 +116,12 @@ export function blockProjection(shape: ProjectionShape): FeatureMap {
       sum.fill(0);
       for (let at = 0; at < inputs; at += n) {
         const filled = Math.min(n, inputs - at);
-        for (let k = 0; k < filled; k++) v[k] = before[at + k] * x[at + k];
+        for (let k = 0; k < filled; k++) v[k] = x[at + k];
         v.fill(0, filled);
-        hadamard(v, 0, n);
-        for (let k = 0; k < n; k++) sum[k] += after[at + k] * v[k];
+        flipSigns(bits, before, at, filled);
+        workspace.hadamard();
+        flipSigns(bits, after, at, n);
+        for (let k = 0; k < n; k++) sum[k] += v[k];
       }
       for (let j = 0; j < outputs; j++) out[j] = scale * sum[taken === null ? j : taken[j]];
     },

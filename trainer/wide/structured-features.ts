@@ -6,10 +6,11 @@
  * Both work on blocks of n inputs, n the least power of two that holds them, zeros behind; a block gives n frequencies.
  */
 import { checkShape, type FeatureMap, type FeatureShape } from './feature-map.ts';
-import { hadamard, powerOfTwo } from './hadamard.ts';
 import { plainFeatures } from './plain-features.ts';
+import { powerOfTwo } from './power-of-two.ts';
 import { normalLength, openRandom, type Random, shuffled } from './random.ts';
-import { writeWaves } from './waves.ts';
+import { drawSigns, flipSigns } from './signs.ts';
+import { type Workspace, workspaceBytes, workspaceOf } from './workspace.ts';
 
 /** Constructions by name. */
 export const FEATURE_KINDS = ['plain', 'fastfood', 'orthogonal'] as const;
@@ -47,7 +48,7 @@ export function createFeatures(shape: FeatureShape, kind: FeatureKind = 'orthogo
  */
 export function fastfoodFeatures(shape: FeatureShape): FeatureMap {
   return blocked(shape, (random, n) => {
-    const signs = signsOf(random, n);
+    const signs = drawSigns(random, n);
     const order = shuffled(random, n);
     const normal = Float32Array.from({ length: n }, () => random.normal());
     let square = 0;
@@ -58,12 +59,13 @@ export function fastfoodFeatures(shape: FeatureShape): FeatureMap {
     return {
       lengths,
       bytes: 16 * n,
-      turn(v) {
-        for (let k = 0; k < n; k++) v[k] *= signs[k];
-        hadamard(v, 0, n);
-        for (let k = 0; k < n; k++) moved[k] = v[order[k]] * normal[k];
-        v.set(moved);
-        hadamard(v, 0, n);
+      turn(workspace) {
+        const { numbers, bits } = workspace;
+        flipSigns(bits, signs, 0, n);
+        workspace.hadamard();
+        for (let k = 0; k < n; k++) moved[k] = numbers[order[k]] * normal[k];
+        numbers.set(moved);
+        workspace.hadamard();
       },
     };
   });
@@ -82,16 +84,16 @@ export function fastfoodFeatures(shape: FeatureShape): FeatureMap {
  */
 export function orthogonalFeatures(shape: FeatureShape): FeatureMap {
   return blocked(shape, (random, n) => {
-    const signs = Array.from({ length: ROUNDS }, () => signsOf(random, n));
+    const signs = drawSigns(random, ROUNDS * n);
     // Each transform lengthens by √n.
     const lengths = Float32Array.from({ length: n }, () => normalLength(random, n) / n ** (ROUNDS / 2));
     return {
       lengths,
       bytes: 4 * ROUNDS * n,
-      turn(v) {
-        for (const sign of signs) {
-          for (let k = 0; k < n; k++) v[k] *= sign[k];
-          hadamard(v, 0, n);
+      turn(workspace) {
+        for (let round = 0; round < ROUNDS; round++) {
+          flipSigns(workspace.bits, signs, round * n, n);
+          workspace.hadamard();
         }
       },
     };
@@ -103,7 +105,7 @@ interface Block {
   readonly lengths: Float32Array;
   readonly bytes: number;
   /** Turns the padded inputs, in place. */
-  turn(v: Float32Array): void;
+  turn(workspace: Workspace): void;
 }
 
 function blocked(shape: FeatureShape, draw: (random: Random, n: number) => Block): FeatureMap {
@@ -111,29 +113,25 @@ function blocked(shape: FeatureShape, draw: (random: Random, n: number) => Block
   const { inputs, outputs, width } = shape;
   const n = Math.max(LEAST_BLOCK, powerOfTwo(inputs));
   const pairs = outputs / 2;
-  const turns = 1 / (2 * Math.PI * width);
   const blocks = Array.from({ length: Math.ceil(pairs / n) }, (_, b) => draw(openRandom(shape.seed, b), n));
-  for (const { lengths } of blocks) for (let k = 0; k < n; k++) lengths[k] *= turns;
+  for (const { lengths } of blocks) for (let k = 0; k < n; k++) lengths[k] /= width;
+  const workspace = workspaceOf(n);
+  const { numbers } = workspace;
   const size = Math.sqrt(1 / pairs);
   const padded = new Float32Array(n);
-  const v = new Float32Array(n);
   return {
     inputs,
     outputs,
-    bytes: blocks.reduce((sum, block) => sum + block.bytes + 4 * n, 8 * n),
+    bytes: blocks.reduce((sum, block) => sum + block.bytes + 4 * n, 4 * n + workspaceBytes(n)),
     apply(x, out) {
       for (let k = 0; k < inputs; k++) padded[k] = x[k];
       for (let b = 0, from = 0; from < pairs; b++, from += n) {
-        v.set(padded);
-        blocks[b].turn(v);
+        numbers.set(padded);
         const { lengths } = blocks[b];
-        for (let k = 0; k < n; k++) v[k] *= lengths[k];
-        writeWaves(v, Math.min(n, pairs - from), size, out, from, pairs);
+        blocks[b].turn(workspace);
+        for (let k = 0; k < n; k++) numbers[k] *= lengths[k];
+        workspace.writeWaves(Math.min(n, pairs - from), size, out, from, pairs);
       }
     },
   };
-}
-
-function signsOf(random: Random, n: number): Float32Array {
-  return Float32Array.from({ length: n }, () => random.sign());
 }

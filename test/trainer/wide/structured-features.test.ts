@@ -1,10 +1,11 @@
 /** Maps of random features: what a caller may count on, whichever construction. */
 import { describe, expect, test } from 'vitest';
-import { hadamard, powerOfTwo } from '../../../trainer/wide/hadamard.ts';
 import { medianWidth } from '../../../trainer/wide/kernel-width.ts';
+import { powerOfTwo } from '../../../trainer/wide/power-of-two.ts';
 import { normalLength, openRandom } from '../../../trainer/wide/random.ts';
+import { drawSigns, flipSigns } from '../../../trainer/wide/signs.ts';
 import { createFeatures, FEATURE_KINDS } from '../../../trainer/wide/structured-features.ts';
-import { writeWaves } from '../../../trainer/wide/waves.ts';
+import { workspaceOf } from '../../../trainer/wide/workspace.ts';
 
 function normals(count: number, seed: number): Float32Array {
   const random = openRandom(seed);
@@ -62,39 +63,34 @@ test('structured maps keep a few numbers a feature, plain ones as many as there 
   expect(createFeatures(shape, 'plain').bytes).toBeGreaterThan(1000 * 8192);
 });
 
-describe('the transform', () => {
-  test.each([1, 2, 8, 64, 512])('of %i numbers is that of its definition, and twice gives n times', (n) => {
-    const x = normals(n + 3, n);
-    const out = x.slice();
-    hadamard(out, 3, n);
-    expect(out.slice(0, 3)).toEqual(x.slice(0, 3));
-    for (let i = 0; i < n; i++) {
-      let sum = 0;
-      for (let j = 0; j < n; j++) sum += (bits(i & j) % 2 === 0 ? 1 : -1) * x[3 + j];
-      // Single precision: log2 n roundings of numbers of size √n.
-      expect(Math.abs(out[3 + i] - sum)).toBeLessThan(1e-5 * Math.sqrt(n));
-    }
-    hadamard(out, 3, n);
-    for (let i = 0; i < n; i++) expect(Math.abs(out[3 + i] / n - x[3 + i])).toBeLessThan(1e-5);
-  });
-
-  test('the power of two that holds a count', () => {
-    expect([1, 2, 3, 64, 65, 76800].map(powerOfTwo)).toEqual([1, 2, 4, 64, 128, 131072]);
-  });
+test('the power of two that holds a count', () => {
+  expect([1, 2, 3, 64, 65, 76800].map(powerOfTwo)).toEqual([1, 2, 4, 64, 128, 131072]);
 });
 
-function bits(value: number): number {
-  return value.toString(2).replaceAll('0', '').length;
-}
+test('signs are as often minus as plus, and flip numbers exactly', () => {
+  const signs = drawSigns(openRandom(3), 10_000);
+  const minus = signs.reduce((sum, sign) => sum + (sign === 0 ? 0 : 1), 0);
+  // Within four deviations of half.
+  expect(Math.abs(minus - 5000)).toBeLessThan(200);
+  const numbers = normals(10_000, 4);
+  const flipped = numbers.slice();
+  flipSigns(new Int32Array(flipped.buffer), signs, 0, 10_000);
+  expect(flipped).toEqual(numbers.map((value, k) => (signs[k] === 0 ? value : -value)));
+});
 
-test('waves are cosine and sine to single precision, also of many turns', () => {
-  const phases = Float32Array.from({ length: 4001 }, (_, k) => (k - 2000) / 371);
-  const out = new Float32Array(2 * 4001);
-  writeWaves(phases, 4001, 2, out, 0, 4001);
-  phases.forEach((phase, k) => {
-    expect(Math.abs(out[k] - 2 * Math.cos(2 * Math.PI * phase))).toBeLessThan(2.5e-7);
-    expect(Math.abs(out[4001 + k] - 2 * Math.sin(2 * Math.PI * phase))).toBeLessThan(2.5e-7);
-  });
+test('waves are cosine and sine to single precision, also of many turns and of part of a run', () => {
+  const workspace = workspaceOf(4001);
+  for (const count of [4001, 77]) {
+    const phases = Float32Array.from({ length: count }, (_, k) => (k - count / 2) / 37);
+    workspace.numbers.set(phases);
+    const out = new Float32Array(2 * count);
+    workspace.writeWaves(count, 2, out, 0, count);
+    // Size 2: twice 1.3e-7 of the cosine, and the rounding of phases up to 54 radians, 54 · 6e-8 · 2.
+    phases.forEach((phase, k) => {
+      expect(Math.abs(out[k] - 2 * Math.cos(phase))).toBeLessThan(7e-6);
+      expect(Math.abs(out[count + k] - 2 * Math.sin(phase))).toBeLessThan(7e-6);
+    });
+  }
 });
 
 test('lengths of normal vectors have the moments of the chi-squared distribution', () => {
