@@ -7,7 +7,7 @@
 import type { Fold } from './incremental-svd.ts';
 import { diagonalise } from './small-eigen.ts';
 import { measureOrthogonality, ORTHOGONALITY_BOUND, orthonormaliseRows } from './tall-orthonormal.ts';
-import { combineRows, rowProducts, scratchLength } from './tall-rows.ts';
+import { TallRows } from './tall-rows.ts';
 
 /** Blocks between measurements of the basis. */
 const MEASURE_EVERY = 16;
@@ -20,13 +20,11 @@ const SMALL_LEFT = 1e-4;
 const VANISHED = 1e-26;
 const VANISHED_OF_LEFT = 1e-13;
 
-/** See the file's head. Memory: (rank + block) rows. */
+/** See the file's head. Memory: (2 rank + block) rows. */
 export class BlockFold implements Fold {
-  readonly #n: number;
   readonly #most: number;
   /** Rows 0 … rank − 1 are the basis, rows #most … the block: fixed places, so that rows can be written at any time. */
-  readonly #buffer: Float64Array;
-  readonly #scratch: Float64Array;
+  readonly #rows: TallRows;
   readonly #p: Float64Array;
   readonly #again: Float64Array;
   readonly #left: Float64Array;
@@ -46,10 +44,8 @@ export class BlockFold implements Fold {
 
   constructor(columns: number, most: number, block: number) {
     const size = most + block;
-    this.#n = columns;
     this.#most = most;
-    this.#buffer = new Float64Array(size * columns);
-    this.#scratch = new Float64Array(scratchLength(size, columns));
+    this.#rows = new TallRows(size, most, columns);
     this.#p = new Float64Array(block * most);
     this.#again = new Float64Array(block * most);
     this.#left = new Float64Array(block * block);
@@ -64,8 +60,7 @@ export class BlockFold implements Fold {
   }
 
   rowAt(i: number): Float64Array {
-    const at = (this.#most + i) * this.#n;
-    return this.#buffer.subarray(at, at + this.#n);
+    return this.#rows.row(this.#most + i);
   }
 
   fade(factor: number): void {
@@ -75,7 +70,7 @@ export class BlockFold implements Fold {
   }
 
   basis(): Float64Array {
-    return this.#buffer.slice(0, this.rank * this.#n);
+    return this.#rows.first(this.rank);
   }
 
   fold(count: number): void {
@@ -92,10 +87,9 @@ export class BlockFold implements Fold {
   /** P, and the products of what is left of the rows; true where the rows themselves became what is left of them. */
   #project(count: number): boolean {
     const k = this.rank;
-    const n = this.#n;
     const [p, left, squares] = [this.#p, this.#left, this.#squares];
-    rowProducts(this.#buffer, n, this.#most, count, 0, k, p);
-    rowProducts(this.#buffer, n, this.#most, count, this.#most, count, left);
+    this.#rows.products(this.#most, count, 0, k, p);
+    this.#rows.products(this.#most, count, this.#most, count, left);
     for (let i = 0; i < count; i++) squares[i] = left[i * count + i];
     let least = 1;
     for (let i = 0; i < count; i++) {
@@ -107,17 +101,12 @@ export class BlockFold implements Fold {
       if (squares[i] > 0) least = Math.min(least, left[i * count + i] / squares[i]);
     }
     if (k === 0 || least > SMALL_LEFT) return false;
-    this.#takeAway(count, p);
-    rowProducts(this.#buffer, n, this.#most, count, 0, k, this.#again);
-    this.#takeAway(count, this.#again);
+    this.#rows.takeAway(p, k, this.#most, count);
+    this.#rows.products(this.#most, count, 0, k, this.#again);
+    this.#rows.takeAway(this.#again, k, this.#most, count);
     for (let i = 0; i < count * k; i++) p[i] += this.#again[i];
-    rowProducts(this.#buffer, n, this.#most, count, this.#most, count, left);
+    this.#rows.products(this.#most, count, this.#most, count, left);
     return true;
-  }
-
-  #takeAway(count: number, p: Float64Array): void {
-    for (let i = 0; i < count * this.rank; i++) this.#turn[i] = -p[i];
-    combineRows(this.#buffer, this.#n, 0, this.rank, this.#turn, this.#most, count, true, this.#scratch);
   }
 
   /** Eigenvectors of K'K as rows of `small`, and the new values. */
@@ -157,15 +146,15 @@ export class BlockFold implements Fold {
         for (let j = 0; j < old; j++) turn[at + j] -= share * p[row * old + j];
       }
     }
-    combineRows(this.#buffer, this.#n, 0, width, turn, 0, this.rank, false, this.#scratch);
+    this.#rows.combine(turn, width, this.rank);
   }
 
   #keepOrthonormal(): void {
-    this.orthogonality = measureOrthogonality(this.#buffer, this.#n, this.rank, this.#small);
+    this.orthogonality = measureOrthogonality(this.#rows, this.rank, this.#small);
     if (this.orthogonality <= ORTHOGONALITY_BOUND) return;
-    orthonormaliseRows(this.#buffer, this.#n, this.rank, this.#scratch);
+    orthonormaliseRows(this.#rows, this.rank);
     this.corrections++;
-    this.orthogonality = measureOrthogonality(this.#buffer, this.#n, this.rank, this.#small);
+    this.orthogonality = measureOrthogonality(this.#rows, this.rank, this.#small);
   }
 }
 

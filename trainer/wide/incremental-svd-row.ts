@@ -6,7 +6,7 @@
 import type { Fold } from './incremental-svd.ts';
 import { RankOneEigen } from './rank-one-eigen.ts';
 import { measureOrthogonality, ORTHOGONALITY_BOUND, orthonormaliseRows } from './tall-orthonormal.ts';
-import { combineRows, rowProducts, scratchLength } from './tall-rows.ts';
+import { TallRows } from './tall-rows.ts';
 
 /** As for blocks: below these shares of a row's square, project again; nothing but rounding. */
 const SMALL_LEFT = 1e-4;
@@ -14,15 +14,13 @@ const VANISHED = 1e-26;
 /** Turnings of the long rows between measurements of the basis. */
 const MEASURE_EVERY = 8;
 
-/** See the file's head. Memory: (2 rank + SPARE) rows at most. */
+/** See the file's head. Memory: (2 rank + SPARE) rows. */
 export class RowFold implements Fold {
   /** Places for what is left of rows; more make long rows turn more seldom and be read longer. */
   static readonly SPARE = 32;
-  readonly #n: number;
   readonly #most: number;
   readonly #capacity: number;
-  readonly #buffer: Float64Array;
-  readonly #scratch: Float64Array;
+  readonly #rows: TallRows;
   /** (rank × width) C, with row stride #capacity; and its next. */
   #mix: Float64Array;
   #nextMix: Float64Array;
@@ -43,11 +41,9 @@ export class RowFold implements Fold {
   #turns = 0;
 
   constructor(columns: number, most: number) {
-    this.#n = columns;
     this.#most = most;
     this.#capacity = most + RowFold.SPARE;
-    this.#buffer = new Float64Array(this.#capacity * columns);
-    this.#scratch = new Float64Array(scratchLength(most, columns));
+    this.#rows = new TallRows(this.#capacity, most, columns);
     this.#mix = new Float64Array(most * this.#capacity);
     this.#nextMix = new Float64Array(most * this.#capacity);
     this.#along = new Float64Array(this.#capacity);
@@ -60,8 +56,7 @@ export class RowFold implements Fold {
   }
 
   rowAt(_: number): Float64Array {
-    const at = this.#width * this.#n;
-    return this.#buffer.subarray(at, at + this.#n);
+    return this.#rows.row(this.#width);
   }
 
   fade(factor: number): void {
@@ -72,7 +67,7 @@ export class RowFold implements Fold {
 
   basis(): Float64Array {
     this.#turnLongRows();
-    return this.#buffer.slice(0, this.rank * this.#n);
+    return this.#rows.first(this.rank);
   }
 
   fold(_: number): void {
@@ -101,7 +96,7 @@ export class RowFold implements Fold {
   #project(square: number): number {
     if (this.rank === 0) return square;
     const [width, stride, along, mix] = [this.#width, this.#capacity, this.#along, this.#mix];
-    rowProducts(this.#buffer, this.#n, width, 1, 0, width, along);
+    this.#rows.products(width, 1, 0, width, along);
     const part = this.#z;
     for (let k = 0; k < this.rank; k++) {
       let sum = 0;
@@ -111,14 +106,14 @@ export class RowFold implements Fold {
     }
     along.fill(0, 0, width);
     for (let k = 0; k < this.rank; k++) {
-      for (let j = 0; j < width; j++) along[j] -= part[k] * mix[k * stride + j];
+      for (let j = 0; j < width; j++) along[j] += part[k] * mix[k * stride + j];
     }
-    combineRows(this.#buffer, this.#n, 0, width, along, width, 1, true, this.#scratch);
+    this.#rows.takeAway(along, width, width, 1);
     return this.#squareLeft();
   }
 
   #squareLeft(): number {
-    rowProducts(this.#buffer, this.#n, this.#width, 1, this.#width, 1, this.#one);
+    this.#rows.products(this.#width, 1, this.#width, 1, this.#one);
     return this.#one[0];
   }
 
@@ -151,7 +146,7 @@ export class RowFold implements Fold {
     if (this.rank === 0) return;
     const dense = new Float64Array(this.rank * width);
     for (let k = 0; k < this.rank; k++) dense.set(this.#mix.subarray(k * stride, k * stride + width), k * width);
-    combineRows(this.#buffer, this.#n, 0, width, dense, 0, this.rank, false, this.#scratch);
+    this.#rows.combine(dense, width, this.rank);
     this.#mix.fill(0);
     for (let k = 0; k < this.rank; k++) this.#mix[k * stride + k] = 1;
     this.#width = this.rank;
@@ -160,10 +155,10 @@ export class RowFold implements Fold {
   }
 
   #keepOrthonormal(): void {
-    this.orthogonality = measureOrthogonality(this.#buffer, this.#n, this.rank, this.#products);
+    this.orthogonality = measureOrthogonality(this.#rows, this.rank, this.#products);
     if (this.orthogonality <= ORTHOGONALITY_BOUND) return;
-    orthonormaliseRows(this.#buffer, this.#n, this.rank, this.#scratch);
+    orthonormaliseRows(this.#rows, this.rank);
     this.corrections++;
-    this.orthogonality = measureOrthogonality(this.#buffer, this.#n, this.rank, this.#products);
+    this.orthogonality = measureOrthogonality(this.#rows, this.rank, this.#products);
   }
 }

@@ -6,8 +6,11 @@
  * to be given back as a ridge where the covariance is inverted. Not for singular values below 1e-7 of the largest: the small
  * problem is one of squares.
  */
+
+import { PANEL_BYTES } from '../kernels/products.ts';
 import { BlockFold } from './incremental-svd-block.ts';
 import { RowFold } from './incremental-svd-row.ts';
+import { TallRows } from './tall-rows.ts';
 
 /** What is to be decomposed, and how. */
 export interface SvdShape {
@@ -75,7 +78,7 @@ const DEFAULT_BLOCK = 32;
  *         that came before it is lost)
  * source  Brand, Linear Algebra and its Applications 415 (2006), sections 2 to 4.1; several rows at a time as there in
  *         equations 2-4; the residual's basis by Cholesky factor of its products instead of Gram and Schmidt
- * cost    about columns × (2 rank + block/2 + rank²/block + rank) multiplications a row; memory 8 columns (rank + block)
+ * cost    about columns × (2 rank + block/2 + rank²/block + rank) multiplications a row; memory 8 columns (2 rank + block)
  *         bytes
  */
 export class IncrementalSvd {
@@ -151,8 +154,8 @@ export class IncrementalSvd {
 
 /** Bytes that a decomposition of that shape takes. */
 export function svdBytes({ columns, rank, blockRows = DEFAULT_BLOCK }: SvdShape): number {
-  const rows = blockRows === 1 ? 2 * rank + RowFold.SPARE : rank + blockRows;
-  return 8 * columns * rows + 8 * 6 * (rank + blockRows) ** 2 + 8 * 512 * (rank + blockRows);
+  const spare = blockRows === 1 ? RowFold.SPARE : blockRows;
+  return TallRows.bytes(rank + spare, rank, columns) + PANEL_BYTES + 8 * 6 * (rank + spare) ** 2;
 }
 
 function requireWhole(name: string, value: number): void {

@@ -1,6 +1,6 @@
 /** How far long rows are from orthonormal, and making them so again where rounding has added up. */
 import { cholesky } from '../linalg/cholesky.ts';
-import { combineRows, rowProducts } from './tall-rows.ts';
+import type { TallRows } from './tall-rows.ts';
 
 /** Departure from the unit matrix beyond which a basis is set right; rounding alone stays a thousand times below. */
 export const ORTHOGONALITY_BOUND = 1e-10;
@@ -8,14 +8,14 @@ export const ORTHOGONALITY_BOUND = 1e-10;
 /**
  * Largest entry of |V V' − I|.
  *
- * shapes  the first k rows of the buffer, each of `columns`; scratch (k × k)
+ * shapes  V the first k rows; scratch (k × k)
  * units   none
  * throws  nothing
  * source  definition
  * cost    k² columns multiplications
  */
-export function measureOrthogonality(buffer: Float64Array, columns: number, k: number, scratch: Float64Array): number {
-  rowProducts(buffer, columns, 0, k, 0, k, scratch);
+export function measureOrthogonality(rows: TallRows, k: number, scratch: Float64Array): number {
+  rows.products(0, k, 0, k, scratch);
   let worst = 0;
   for (let i = 0; i < k; i++) {
     for (let j = 0; j < k; j++) worst = Math.max(worst, Math.abs(scratch[i * k + j] - (i === j ? 1 : 0)));
@@ -27,18 +27,18 @@ export function measureOrthogonality(buffer: Float64Array, columns: number, k: n
  * Makes the first k rows orthonormal, the first ones changed least: V ← L⁻¹ V with V V' = L L'. Done twice, since one pass
  * leaves what its factor was off by.
  *
- * shapes  the first k rows of the buffer, each of `columns`; scratch as `combineRows` needs for k rows
+ * shapes  V the first k rows
  * units   none
  * throws  TrainError 'fit' if the rows have become dependent
  * source  Cholesky QR, twice: Yamamoto, Nakatsukasa, Yanagisawa & Fukaya, Electronic Transactions on Numerical Analysis 44
  *         (2015)
  * cost    4 k² columns multiplications
  */
-export function orthonormaliseRows(buffer: Float64Array, columns: number, k: number, scratch: Float64Array): void {
+export function orthonormaliseRows(rows: TallRows, k: number): void {
   const products = new Float64Array(k * k);
   for (let pass = 0; pass < 2; pass++) {
-    rowProducts(buffer, columns, 0, k, 0, k, products);
-    combineRows(buffer, columns, 0, k, inverseLower(cholesky(products, k), k), 0, k, false, scratch);
+    rows.products(0, k, 0, k, products);
+    rows.combine(inverseLower(cholesky(products, k), k), k, k);
   }
 }
 

@@ -1,140 +1,103 @@
 /**
- * Products of a few long rows, which is all that an incremental decomposition of wide rows does: rows against rows, and
- * rows made of other rows. Rows lie one after another in one buffer. Worked in panels of columns that stay in cache, several
- * rows at a time, so that memory is read once for each pass. Not for square matrices.
+ * A few long rows in the kernels' memory, and the two things an incremental decomposition does with them: products of rows
+ * with rows, and rows made of other rows. The coming row or block lies behind the basis, in the same memory.
  */
+import { createKernels, type Kernels } from '../kernels/kernels.ts';
 
-/** Columns worked on together: 64 rows of it are 256 KiB, within the second cache. */
-const PANEL = 512;
+/** Rows by their number, all of one length. */
+export class TallRows {
+  readonly columns: number;
+  readonly #kernels: Kernels;
+  readonly #rows: Float64Array;
+  /** (most combined × columns) where combinations are made before they take their places. */
+  readonly #made: Float64Array;
+  readonly #small: Float64Array;
+  readonly #out: Float64Array;
 
-/**
- * Products of rows with rows over their whole length, C = A B'.
- *
- * shapes  buffer of rows of `columns`; A is rows a … a + m − 1 of it, B rows b … b + k − 1; out (m × k)
- * units   as the rows' product
- * throws  nothing
- * source  definition
- * cost    m k columns multiplications; allocates nothing
- */
-export function rowProducts(
-  buffer: Float64Array,
-  columns: number,
-  a: number,
-  m: number,
-  b: number,
-  k: number,
-  out: Float64Array,
-): void {
-  out.fill(0, 0, m * k);
-  for (let from = 0; from < columns; from += PANEL) {
-    const width = Math.min(PANEL, columns - from);
-    for (let j = 0; j < k; j += 2) {
-      const two = j + 1 < k ? columns : 0;
-      const b0 = (b + j) * columns + from;
-      for (let i = 0; i < m; i += 2) {
-        addTwoByTwo(buffer, (a + i) * columns + from, i + 1 < m ? columns : 0, b0, two, width, out, i * k + j, k);
-      }
-    }
+  /**
+   * Room for `rows` rows, and for combining up to `most` of them at once.
+   *
+   * shapes  rows of `columns`
+   * units   any
+   * throws  RangeError where the rows would not fit the kernels' memory of 4 GiB
+   * source  none
+   * cost    8 (rows + most) columns bytes
+   */
+  constructor(rows: number, most: number, columns: number) {
+    const small = rows * rows;
+    this.columns = columns;
+    this.#kernels = createKernels(TallRows.bytes(rows, most, columns));
+    this.#rows = this.#kernels.alloc64(rows * columns);
+    this.#made = this.#kernels.alloc64(most * columns);
+    this.#small = this.#kernels.alloc64(small);
+    this.#out = this.#kernels.alloc64(small);
   }
-}
 
-/** A row short of two is taken twice and its second product left out. */
-function addTwoByTwo(
-  x: Float64Array,
-  a0: number,
-  aNext: number,
-  b0: number,
-  bNext: number,
-  width: number,
-  out: Float64Array,
-  at: number,
-  k: number,
-): void {
-  let s00 = 0;
-  let s01 = 0;
-  let s10 = 0;
-  let s11 = 0;
-  for (let c = 0; c < width; c++) {
-    const p = x[a0 + c];
-    const q = x[a0 + aNext + c];
-    const u = x[b0 + c];
-    const v = x[b0 + bNext + c];
-    s00 += p * u;
-    s01 += p * v;
-    s10 += q * u;
-    s11 += q * v;
+  /** Bytes that such rows take. */
+  static bytes(rows: number, most: number, columns: number): number {
+    return 8 * ((rows + most) * columns + 2 * rows * rows) + 1024;
   }
-  out[at] += s00;
-  if (bNext !== 0) out[at + 1] += s01;
-  if (aNext !== 0) out[at + k] += s10;
-  if (aNext !== 0 && bNext !== 0) out[at + k + 1] += s11;
-}
 
-/**
- * Rows become combinations of rows, in place: row t + i ← Σ_j coefficients[i, j] · row f + j, the old ones on the right.
- * With `isAdded` the combination is added to what stands there, and the rows written must not be among those read.
- *
- * shapes  buffer of rows of `columns`; coefficients (count × from); rows f … f + from − 1 read, t … t + count − 1 written
- * units   as the rows'
- * throws  nothing
- * source  definition
- * cost    count · from · columns multiplications; scratch of count × 512
- */
-export function combineRows(
-  buffer: Float64Array,
-  columns: number,
-  f: number,
-  from: number,
-  coefficients: Float64Array,
-  t: number,
-  count: number,
-  isAdded: boolean,
-  scratch: Float64Array,
-): void {
-  for (let start = 0; start < columns; start += PANEL) {
-    const width = Math.min(PANEL, columns - start);
-    scratch.fill(0, 0, count * width);
-    for (let i = 0; i < count; i++) {
-      const row = i * from;
-      let j = 0;
-      for (; j + 3 < from; j += 4) {
-        addFour(scratch, i * width, buffer, (f + j) * columns + start, columns, width, coefficients, row + j);
-      }
-      for (; j < from; j++) addOne(scratch, i * width, buffer, (f + j) * columns + start, width, coefficients[row + j]);
-    }
-    for (let i = 0; i < count; i++) {
-      const to = (t + i) * columns + start;
-      if (isAdded) for (let c = 0; c < width; c++) buffer[to + c] += scratch[i * width + c];
-      else buffer.set(scratch.subarray(i * width, (i + 1) * width), to);
-    }
+  /** The numbers of one row, to be read and written. */
+  row(i: number): Float64Array {
+    return this.#rows.subarray(i * this.columns, (i + 1) * this.columns);
   }
-}
 
-/** Length of the scratch that `combineRows` needs for so many rows. */
-export function scratchLength(count: number, columns: number): number {
-  return count * Math.min(PANEL, columns);
-}
+  /** A copy of the first `count` rows. */
+  first(count: number): Float64Array {
+    return this.#rows.slice(0, count * this.columns);
+  }
 
-function addFour(
-  out: Float64Array,
-  to: number,
-  x: Float64Array,
-  at: number,
-  columns: number,
-  width: number,
-  by: Float64Array,
-  k: number,
-): void {
-  const f0 = by[k];
-  const f1 = by[k + 1];
-  const f2 = by[k + 2];
-  const f3 = by[k + 3];
-  const r1 = at + columns;
-  const r2 = r1 + columns;
-  const r3 = r2 + columns;
-  for (let c = 0; c < width; c++) out[to + c] += f0 * x[at + c] + f1 * x[r1 + c] + f2 * x[r2 + c] + f3 * x[r3 + c];
-}
+  /**
+   * Products of rows a … a + m − 1 with rows b … b + k − 1.
+   *
+   * shapes  out (m × k)
+   * units   as the rows' product
+   * throws  nothing
+   * source  definition
+   * cost    m k columns multiplications
+   */
+  products(a: number, m: number, b: number, k: number, out: Float64Array): void {
+    if (m === 1) {
+      for (let j = 0; j < k; j++) this.#out[j] = this.#kernels.dot(this.row(a), this.row(b + j), this.columns);
+    } else this.#kernels.multiplyTransposed(this.#out, this.#span(a, m), this.#span(b, k), m, this.columns, k);
+    out.set(this.#out.subarray(0, m * k));
+  }
 
-function addOne(out: Float64Array, to: number, x: Float64Array, at: number, width: number, f: number): void {
-  for (let c = 0; c < width; c++) out[to + c] += f * x[at + c];
+  /**
+   * Rows 0 … count − 1 become combinations of rows 0 … from − 1.
+   *
+   * shapes  coefficients (count × from)
+   * units   any
+   * throws  nothing
+   * source  definition
+   * cost    count · from · columns multiplications
+   */
+  combine(coefficients: Float64Array, from: number, count: number): void {
+    this.#small.set(coefficients.subarray(0, count * from));
+    this.#kernels.multiply(this.#made, this.#small, this.#rows, count, from, this.columns);
+    this.#rows.set(this.#made.subarray(0, count * this.columns));
+  }
+
+  /**
+   * Combinations of rows 0 … from − 1 are taken from rows at … at + count − 1.
+   *
+   * shapes  coefficients (count × from)
+   * units   any
+   * throws  nothing
+   * source  definition
+   * cost    count · from · columns multiplications
+   */
+  takeAway(coefficients: Float64Array, from: number, at: number, count: number): void {
+    if (count === 1) {
+      for (let j = 0; j < from; j++) this.#kernels.axpy(this.row(at), -coefficients[j], this.row(j), this.columns);
+      return;
+    }
+    this.#small.set(coefficients.subarray(0, count * from));
+    this.#kernels.multiplyTake(this.#span(at, count), this.#small, this.#rows, count, from, this.columns);
+  }
+
+  #span(at: number, count: number): Float64Array {
+    return this.#rows.subarray(at * this.columns, (at + count) * this.columns);
+  }
 }
