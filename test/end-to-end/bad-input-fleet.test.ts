@@ -48,7 +48,9 @@ describe('a folder of sites', () => {
       '2 sites/mistyped/site.yaml': expect.stringMatching(
         /^sites\/mistyped\/site\.yaml:4:1: horizn is not a known key; did you mean "horizon"\?/,
       ),
-      '3 no-history': expect.stringMatching(/^sites\/no-history: expected history files .* got none; put them there/),
+      '3 no-history': expect.stringMatching(
+        /^sites\/no-history: expected history files in this folder .* got none; check the path/,
+      ),
       '4 sites/no-site-file/site.yaml': expect.stringMatching(/expected a site file, got no such file/),
       '5 short': expect.stringMatching(/^The history holds 29 ticks.*Give a longer history/),
       '6 mill-lane': expect.stringMatching(/twin-a.*expected a site name of its own.*twin-b\/site\.yaml as well/),
@@ -83,7 +85,12 @@ describe('a fleet file', () => {
     const { sites } = JSON.parse(out) as { sites: { site: string; ticks?: number; problem?: string }[] };
     expect(sites.map(({ site, ticks, problem }) => [site, ticks ?? problem])).toEqual([
       ['a', 9 * 24],
-      ['b', expect.stringMatching(/fleet\.yaml:3: history: expected files that match "logs\/none\*\.csv", got none/)],
+      [
+        'b',
+        expect.stringMatching(
+          /fleet\.yaml:3: history: logs\/none\*\.csv: expected history files that match this pattern, got none/,
+        ),
+      ],
       ['c', 260],
       ['d', expect.stringMatching(/--from: expected a time such as 2026-03-01, .* got "yesterday"/)],
     ]);

@@ -2,13 +2,13 @@
  * Which sites a fleet has: from a folder with one sub-folder a site, or from a fleet file. What is wrong with one site is
  * kept beside it and stops no other; what is wrong with the fleet file itself is refused at once.
  */
-import { readdirSync, statSync } from 'node:fs';
-import { dirname, join, resolve } from 'node:path';
+import { existsSync, readdirSync, statSync } from 'node:fs';
+import { dirname, isAbsolute, join, resolve } from 'node:path';
 import { type FleetEntryOptions, ProtocolError, parseFleetFile, type Site } from '@stillwell/protocol';
 import { TrainError } from '../errors.ts';
+import { findFiles } from '../history/find-files.ts';
 import { readTextFile } from '../key-file.ts';
 import { readSite } from '../site-file.ts';
-import { filesBelow, matchFiles } from './match-files.ts';
 
 /** A site of the fleet, or why it cannot be fitted. */
 export interface FleetSite {
@@ -22,8 +22,6 @@ export interface FleetSite {
   readonly problem: string | null;
 }
 
-/** Names that history files end in, packed or not. */
-const HISTORY_NAME = /\.(csv|tsv|txt|ndjson|jsonl|parquet)(\.(gz|zst))?$/i;
 /** Name of a site's file in its folder. */
 const SITE_FILE = 'site.yaml';
 
@@ -54,64 +52,52 @@ export function listSites(path: string, out: string): FleetList {
 function fromFile(path: string): FleetSite[] {
   const text = readTextFile(path, 'a fleet file, or a folder with one sub-folder a site', 'check the path');
   const base = dirname(path);
-  return parseFleetFile(text, path).map(({ site, history, options, line }) => {
-    const siteFile = resolveFrom(base, site);
-    const found = history.map((one) => ({ one, files: matchFiles(base, one).flatMap(inFolder) }));
-    const empty = found.find(({ files }) => files.length === 0);
-    const problem =
-      empty === undefined
-        ? null
-        : `${path}:${line}: history: expected files that match ${JSON.stringify(empty.one)}, got none; mend the pattern`;
-    return entry(siteFile, [...new Set(found.flatMap(({ files }) => files))], options, problem);
-  });
-}
-
-/** A folder stands for the history files in and below it. */
-function inFolder(path: string): string[] {
-  if (!statSync(path, { throwIfNoEntry: false })?.isDirectory()) return [path];
-  return filesBelow(path).filter((file) => HISTORY_NAME.test(file));
-}
-
-function resolveFrom(base: string, path: string): string {
-  return path.startsWith('/') ? path : join(base, path);
+  const resolved = (one: string): string => (isAbsolute(one) ? one : join(base, one));
+  return parseFleetFile(text, path).map(({ site, history, options, line }) =>
+    entry(resolved(site), history.map(resolved), options, `${path}:${line}: history: `),
+  );
 }
 
 function fromFolder(folder: string, out: string): FleetList {
-  const sites: FleetSite[] = [];
-  const passedOver: string[] = [];
-  const below = readdirSync(folder, { withFileTypes: true })
-    .map(({ name }) => join(folder, name))
-    .filter((path) => !path.slice(folder.length).includes('/.') && statSync(path).isDirectory())
-    .filter((path) => resolve(path) !== resolve(out))
+  const below = readdirSync(folder)
+    .filter((name) => !name.startsWith('.'))
+    .map((name) => join(folder, name))
+    .filter((path) => statSync(path, { throwIfNoEntry: false })?.isDirectory() && resolve(path) !== resolve(out))
     .sort((a, b) => (a < b ? -1 : 1));
-  for (const path of below) {
-    const siteFile = join(path, SITE_FILE);
-    const history = filesBelow(path).filter((file) => HISTORY_NAME.test(file));
-    const hasSite = statSync(siteFile, { throwIfNoEntry: false }) !== undefined;
-    if (!hasSite && history.length === 0) passedOver.push(path);
-    else sites.push(entry(siteFile, history, {}, history.length === 0 ? noHistory(path) : null));
-  }
-  return { sites, passedOver };
+  const isSite = (path: string): boolean => existsSync(join(path, SITE_FILE)) || hasHistory(path);
+  return {
+    sites: below.filter(isSite).map((path) => entry(join(path, SITE_FILE), [path], {}, '')),
+    passedOver: below.filter((path) => !isSite(path)),
+  };
 }
 
-function noHistory(folder: string): string {
-  return `${folder}: expected history files (.csv, .ndjson or .parquet, also packed) beside ${SITE_FILE}, got none; put them there, or list the site in a fleet file`;
-}
-
-function entry(
-  siteFile: string,
-  history: readonly string[],
-  options: FleetEntryOptions,
-  problem: string | null,
-): FleetSite {
-  const common = { siteFile, history, options };
+function hasHistory(folder: string): boolean {
   try {
-    const site = readSite(siteFile);
-    return { ...common, label: site.site, site, problem };
-  } catch (error) {
-    if (!(error instanceof TrainError) && !(error instanceof ProtocolError)) throw error;
-    return { ...common, label: siteFile, site: null, problem: error.message };
+    return findFiles([folder], null).length > 0;
+  } catch {
+    return false;
   }
+}
+
+/** A site with its files found; what is wrong with either is kept as the reason why it cannot be fitted. */
+function entry(siteFile: string, named: readonly string[], options: FleetEntryOptions, where: string): FleetSite {
+  const common = { siteFile, options, label: siteFile, history: [] };
+  let site: Site;
+  try {
+    site = readSite(siteFile);
+  } catch (error) {
+    return { ...common, site: null, problem: refusalOf(error) };
+  }
+  try {
+    return { ...common, label: site.site, site, history: findFiles(named, site.site), problem: null };
+  } catch (error) {
+    return { ...common, label: site.site, site, problem: where + refusalOf(error) };
+  }
+}
+
+function refusalOf(error: unknown): string {
+  if (error instanceof TrainError || error instanceof ProtocolError) return error.message;
+  throw error;
 }
 
 /** Sites of one name would share a folder, and perhaps a broker: neither is fitted. Letter case makes no other folder everywhere. */
