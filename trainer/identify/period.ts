@@ -3,6 +3,7 @@
  * of them, otherwise the strongest peak of the signals' averaged spectrum that stands clear of its surroundings; and what
  * else comes round beside it.
  */
+import { smallest } from '../history/order-statistics.ts';
 import { fourier } from '../linalg/fourier.ts';
 
 const DAY_MS = 86_400_000;
@@ -49,10 +50,12 @@ export function findPeriods(values: readonly Float64Array[], tickMs: number): Pe
   const day = Math.round(DAY_MS / tickMs);
   const isDaily = day >= SHORTEST_PERIOD_TICKS && day <= LONGEST_PERIOD_TICKS && ticks >= LEAST_PERIODS * day;
   const others: number[] = [];
-  const peaks = spectralPeaks(values, CLEAR_RATIO);
+  const size = segmentTicks(ticks);
+  const spectra = values.map((y) => averagedSpectrum(y, size));
+  const peaks = spectralPeaks(spectra, size, ticks, CLEAR_RATIO);
   const main = isDaily ? day : (peaks.find(({ isRepeated }) => isRepeated)?.period ?? 0);
   if (main === 0) return { main, others: [] };
-  const own = values.length > 1 ? values.flatMap((y) => spectralPeaks([y], OWN_RATIO)) : [];
+  const own = values.length > 1 ? spectra.flatMap((one) => spectralPeaks([one], size, ticks, OWN_RATIO)) : [];
   for (const { period, size, isRepeated } of [...peaks, ...own]) {
     if (others.length >= MOST_OTHERS) break;
     const isNew =
@@ -82,14 +85,17 @@ function isHarmonic(period: number, known: number, size: number, most: number): 
   return false;
 }
 
-/** Peaks that stand clear of their surroundings, the strongest first. */
-function spectralPeaks(values: readonly Float64Array[], clear: number): Peak[] {
-  const ticks = values[0].length;
+/** Ticks of a segment whose spectrum is averaged; 0 where the history is too short for any. */
+function segmentTicks(ticks: number): number {
   let size = 64;
   while (size * 2 <= Math.min(ticks / 2, LONGEST_SEGMENT)) size *= 2;
-  if (ticks < size) return [];
+  return ticks < size ? 0 : size;
+}
+
+/** Peaks of some spectra together that stand clear of their surroundings, the strongest first. */
+function spectralPeaks(spectra: readonly Float64Array[], size: number, ticks: number, clear: number): Peak[] {
   const power = new Float64Array(size / 2);
-  for (const y of values) addPeriodogram(power, y, size);
+  for (const own of spectra) for (let k = 1; k < own.length; k++) power[k] += own[k];
   const first = Math.max(LEAST_PERIODS, Math.ceil(size / LONGEST_PERIOD_TICKS));
   const bins: number[] = [];
   for (let k = first; k <= size / SHORTEST_PERIOD_TICKS && k < power.length - 1; k++) {
@@ -110,29 +116,30 @@ function peakShift(power: Float64Array, k: number): number {
   return bend === 0 ? 0 : (0.5 * (left - right)) / bend;
 }
 
-/** Adds the signal's averaged spectrum, its total made 1 so that no signal speaks louder than another. */
-function addPeriodogram(power: Float64Array, y: Float64Array, size: number): void {
-  const own = new Float64Array(power.length);
-  for (let from = 0; from + size <= y.length; from += size / 2) {
+/** (size / 2) a signal's averaged spectrum, its total made 1 so that no signal speaks louder than another. */
+function averagedSpectrum(y: Float64Array, size: number): Float64Array {
+  const own = new Float64Array(size / 2);
+  const window = Float64Array.from({ length: size }, (_, t) => 0.5 - 0.5 * Math.cos((2 * Math.PI * t) / size));
+  for (let from = 0; size > 0 && from + size <= y.length; from += size / 2) {
     const re = new Float64Array(size);
     const im = new Float64Array(size);
     let mean = 0;
     for (let t = 0; t < size; t++) mean += y[from + t] / size;
-    for (let t = 0; t < size; t++) re[t] = (y[from + t] - mean) * (0.5 - 0.5 * Math.cos((2 * Math.PI * t) / size));
+    for (let t = 0; t < size; t++) re[t] = (y[from + t] - mean) * window[t];
     fourier(re, im);
     for (let k = 1; k < own.length; k++) own[k] += re[k] * re[k] + im[k] * im[k];
   }
   const total = own.reduce((sum, value) => sum + value, 0);
-  if (total > 0) for (let k = 0; k < own.length; k++) power[k] += own[k] / total;
+  return total > 0 ? own.map((value) => value / total) : own.fill(0);
 }
 
 /** Median power around bin k, its own lobe left out. */
 function background(power: Float64Array, k: number): number {
-  const around: number[] = [];
   const reach = Math.max(6, Math.floor(k / 3));
-  for (let j = Math.max(1, k - reach); j <= Math.min(power.length - 1, k + reach); j++) {
-    if (Math.abs(j - k) > 2) around.push(power[j]);
-  }
-  around.sort((a, b) => a - b);
-  return around[around.length >> 1];
+  const from = Math.max(1, k - reach);
+  const to = Math.min(power.length - 1, k + reach);
+  const around = new Float64Array(to - from + 1);
+  let count = 0;
+  for (let j = from; j <= to; j++) if (Math.abs(j - k) > 2) around[count++] = power[j];
+  return smallest(around.subarray(0, count), count >> 1);
 }

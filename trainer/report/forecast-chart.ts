@@ -46,10 +46,12 @@ export function forecastChart(hindcast: Hindcast, signal: number, fromMs: number
       origin: path.originMs,
     })),
   );
-  const came = Array.from(readings, (value, tick) => ({
-    time: new Date(hindcast.fromMs + tick * tickMs),
-    value,
-  })).filter(({ time }) => time.getTime() >= fromMs && time.getTime() <= toMs);
+  const first = Math.max(0, Math.ceil((fromMs - hindcast.fromMs) / tickMs));
+  const last = Math.min(readings.length - 1, Math.floor((toMs - hindcast.fromMs) / tickMs));
+  const came = Array.from({ length: Math.max(0, last - first + 1) }, (_, k) => ({
+    time: new Date(hindcast.fromMs + (first + k) * tickMs),
+    value: readings[first + k] as number,
+  }));
   return chart(
     {
       width: 920,
