@@ -60,6 +60,21 @@ export interface FourierLoops {
   tangle(re: Pointer, im: Pointer, factors: Pointer, n: number): void;
 }
 
+/** Products of a matrix and a vector, which no packing would pay for. */
+export interface ThinLoops {
+  columnSums(c: Pointer, a: Pointer, stride: number, x: Pointer, m: number, steps: number, isTaken: number): void;
+  rowDots(
+    c: Pointer,
+    cStride: number,
+    a: Pointer,
+    stride: number,
+    x: Pointer,
+    rows: number,
+    m: number,
+    isTaken: number,
+  ): void;
+}
+
 /** Along one vector, or several of the same length. */
 export interface VectorLoops {
   dot64(a: Pointer, b: Pointer, n: number): number;
@@ -72,4 +87,4 @@ export interface VectorLoops {
 }
 
 /** All of them. */
-export type Core = ProductLoops & TriangularLoops & FourierLoops & VectorLoops;
+export type Core = ProductLoops & TriangularLoops & FourierLoops & VectorLoops & ThinLoops;

@@ -2,7 +2,7 @@
  * Products of any shape, cut into panels that fit the caches (Goto & van de Geijn 2008): a panel of the right factor stays
  * in the last cache, one of the left in the second, and a strip of eight columns in the first.
  */
-import type { Pointer, ProductLoops } from './core.ts';
+import type { Pointer, ProductLoops, ThinLoops } from './core.ts';
 
 /** Steps summed at a time; the order of the sums, and so the bits of a result, hang on this number alone. */
 const STEPS = 256;
@@ -33,7 +33,7 @@ export interface Factor {
  * cost    m n steps multiplications; half of it where only the lower triangle is asked for
  */
 export function addProduct(
-  core: ProductLoops,
+  core: ProductLoops & ThinLoops,
   scratch: Pointer,
   c: Pointer,
   stride: number,
@@ -45,10 +45,37 @@ export function addProduct(
   options: { isLower?: boolean; isTaken?: boolean } = {},
 ): void {
   const isLower = options.isLower === true;
+  if (n === 1 && addThin(core, c, stride, a, b, m, steps, options.isTaken)) return;
+  if (m === 1 && addThin(core, c, 1, b, a, n, steps, options.isTaken)) return;
   // A narrow right factor would leave most of its strips of eight empty: then the other side takes them. The sums are the same.
   if (n < m && n < NARROW && !isLower)
     addPanels(core, scratch, c, 1, stride, b, a, n, m, steps, isLower, options.isTaken);
   else addPanels(core, scratch, c, stride, 1, a, b, m, n, steps, isLower, options.isTaken);
+}
+
+/** C += A x without packing; false where the parts do not lie side by side. */
+function addThin(
+  core: ThinLoops,
+  c: Pointer,
+  stride: number,
+  a: Factor,
+  x: Factor,
+  m: number,
+  steps: number,
+  isTaken = false,
+): boolean {
+  if (a.isSingle || x.isSingle || x.stepStride !== 1) return false;
+  const sign = isTaken ? 1 : 0;
+  if (a.stepStride === 1) {
+    core.rowDots(c, stride, a.at, a.rowStride, x.at, m, steps, sign);
+    return true;
+  }
+  if (a.rowStride !== 1 || stride !== 1) return false;
+  for (let t = 0; t < steps; t += STEPS) {
+    const from = a.at + 8 * t * a.stepStride;
+    core.columnSums(c, from, a.stepStride, x.at + 8 * t, m, Math.min(STEPS, steps - t), sign);
+  }
+  return true;
 }
 
 function addPanels(

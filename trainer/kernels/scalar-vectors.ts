@@ -1,5 +1,5 @@
 /** The loops of assembly/vectors.ts and assembly/hadamard.ts in plain numbers; see core.ts. */
-import type { VectorLoops } from './core.ts';
+import type { ThinLoops, VectorLoops } from './core.ts';
 import { cosine32 } from './cosines.ts';
 
 /**
@@ -11,11 +11,24 @@ import { cosine32 } from './cosines.ts';
  * source  assembly/vectors.ts and assembly/hadamard.ts, lane by lane
  * cost    half to a quarter of the speed of the lanes
  */
-export function scalarVectors(buffer: ArrayBuffer): VectorLoops {
+export function scalarVectors(buffer: ArrayBuffer): VectorLoops & ThinLoops {
   const heap = new Float64Array(buffer);
   const heap32 = new Float32Array(buffer);
   return {
     dot64: (a, b, n) => dot(heap, a / 8, b / 8, n),
+    columnSums(c, a, stride, x, m, steps, isTaken) {
+      for (let j = 0; j < m; j++) {
+        let sum = 0;
+        for (let t = 0; t < steps; t++) sum += heap[a / 8 + t * stride + j] * heap[x / 8 + t];
+        heap[c / 8 + j] += isTaken ? -sum : sum;
+      }
+    },
+    rowDots(c, cStride, a, stride, x, rows, m, isTaken) {
+      for (let i = 0; i < rows; i++) {
+        const sum = dot(heap, a / 8 + i * stride, x / 8, m);
+        heap[c / 8 + i * cStride] += isTaken ? -sum : sum;
+      }
+    },
     axpy64(y, factor, x, n) {
       for (let k = 0; k < n; k++) heap[y / 8 + k] += factor * heap[x / 8 + k];
     },

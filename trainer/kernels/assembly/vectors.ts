@@ -112,3 +112,57 @@ const SINE_3: f32 = -0.16666656732559204;
 const SINE_5: f32 = 0.008333017118275166;
 const SINE_7: f32 = -0.00019806614727713168;
 const SINE_9: f32 = 2.6000548132287804e-6;
+
+/** c += A'x, or -=, over `steps` rows of A (m columns): each sum in the order of the rows, then added once. */
+export function columnSums(c: usize, a: usize, stride: i32, x: usize, m: i32, steps: i32, isTaken: i32): void {
+  const next = (<usize>stride) << 3;
+  let j = 0;
+  for (; j + 7 < m; j += 8, c += 64, a += 64) eightSums(c, a, next, x, steps, isTaken);
+  for (; j < m; j++, c += 8, a += 8) {
+    let sum: f64 = 0;
+    let from = a;
+    for (let t: usize = 0; t < <usize>steps; t++, from += next) sum += f64.load(from) * f64.load(x + (t << 3));
+    f64.store(c, f64.load(c) + (isTaken ? -sum : sum));
+  }
+}
+
+function eightSums(c: usize, a: usize, next: usize, x: usize, steps: i32, isTaken: i32): void {
+  let s0 = f64x2.splat(0);
+  let s1 = f64x2.splat(0);
+  let s2 = f64x2.splat(0);
+  let s3 = f64x2.splat(0);
+  for (const end = x + (<usize>steps << 3); x < end; x += 8, a += next) {
+    const f = v128.load_splat<f64>(x);
+    s0 = f64x2.add(s0, f64x2.mul(v128.load(a), f));
+    s1 = f64x2.add(s1, f64x2.mul(v128.load(a, 16), f));
+    s2 = f64x2.add(s2, f64x2.mul(v128.load(a, 32), f));
+    s3 = f64x2.add(s3, f64x2.mul(v128.load(a, 48), f));
+  }
+  if (isTaken) {
+    s0 = f64x2.neg(s0);
+    s1 = f64x2.neg(s1);
+    s2 = f64x2.neg(s2);
+    s3 = f64x2.neg(s3);
+  }
+  v128.store(c, f64x2.add(v128.load(c), s0));
+  v128.store(c, f64x2.add(v128.load(c, 16), s1), 16);
+  v128.store(c, f64x2.add(v128.load(c, 32), s2), 32);
+  v128.store(c, f64x2.add(v128.load(c, 48), s3), 48);
+}
+
+/** c += A x, or -=, over `rows` rows of A (m columns): each sum as `dot64` has it, then added once. */
+export function rowDots(
+  c: usize,
+  cStride: i32,
+  a: usize,
+  stride: i32,
+  x: usize,
+  rows: i32,
+  m: i32,
+  isTaken: i32,
+): void {
+  for (let i = 0; i < rows; i++, a += (<usize>stride) << 3, c += (<usize>cStride) << 3) {
+    const sum = dot64(a, x, m);
+    f64.store(c, f64.load(c) + (isTaken ? -sum : sum));
+  }
+}
