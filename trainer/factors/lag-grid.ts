@@ -101,19 +101,43 @@ export function spreadOver(grid: LagGrid, into: Float64Array, from: readonly Flo
   }
 }
 
-/** (points) Lagrange polynomials of a panel's points at one of its lags. */
+/** Points and barycentric weights of panels with so many points. */
+const tables = new Map<number, { readonly points: Float64Array; readonly weights: Float64Array }>();
+
+function tableOf(count: number): { readonly points: Float64Array; readonly weights: Float64Array } {
+  let table = tables.get(count);
+  if (table === undefined) {
+    const points = Float64Array.from({ length: count }, (_, q) => chebyshev(q, count));
+    const weights = points.map((_, q) => (q % 2 === 0 ? 1 : -1) * Math.sin((Math.PI * (q + 0.5)) / count));
+    table = { points, weights };
+    tables.set(count, table);
+  }
+  return table;
+}
+
+/**
+ * Lagrange polynomials of a panel's points at one of its lags.
+ *
+ * shapes  out (points)
+ * units   none
+ * throws  nothing
+ * source  as `spreadOver`
+ * cost    O(points)
+ */
 export function sharesOf({ from, to, count }: Panel, lag: number, out: Float64Array): void {
+  const { points, weights } = tableOf(count);
   const x = to - 1 === from ? 0 : (2 * lag - (from + to - 1)) / (to - 1 - from);
   let sum = 0;
   for (let q = 0; q < count; q++) {
-    const away = x - chebyshev(q, count);
-    if (Math.abs(away) < 1e-14) {
+    const away = x - points[q];
+    if (away > -1e-14 && away < 1e-14) {
       out.fill(0);
       out[q] = 1;
       return;
     }
-    out[q] = ((q % 2 === 0 ? 1 : -1) * Math.sin((Math.PI * (q + 0.5)) / count)) / away;
+    out[q] = weights[q] / away;
     sum += out[q];
   }
-  for (let q = 0; q < count; q++) out[q] /= sum;
+  const share = 1 / sum;
+  for (let q = 0; q < count; q++) out[q] *= share;
 }

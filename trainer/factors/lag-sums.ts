@@ -7,19 +7,23 @@
  * for every lag up to the history's length, since what wraps around lands beyond it (Oppenheim & Schafer, Discrete-Time
  * Signal Processing, section 8.7).
  */
-import { fourier } from '../linalg/fourier.ts';
+import { createKernels, type Kernels } from '../kernels/kernels.ts';
+import { type LagGrid, sharesOf } from './lag-grid.ts';
 
 /** Spectra of one transform length, added up over blocks. */
 interface Spectra {
   readonly size: number;
-  /** (nc × nc) of (size / 2 + 1), later channel first. */
-  readonly re: readonly Float64Array[];
-  readonly im: readonly Float64Array[];
+  /** (nc × nc) pairs i·nc + j, channel i the later; each (size / 2 + 1) real parts, then as many imaginary ones. */
+  readonly pairs: readonly Float64Array[];
 }
 
 /** A transform for short stretches is this much shorter than the next longer one, so that there are few accumulators. */
 const SIZE_STEP = 4;
 const SHORTEST = 256;
+/** Frequencies of all pairs worked on together, so that the channels' spectra stay near the processor. */
+const TILE = 512;
+/** Lags spread at a time. */
+const ROWS = 256;
 
 /**
  * Length of the longest transform for a reach: a quarter of it at least is new ticks.
@@ -39,12 +43,22 @@ export function longestTransform(reach: number): number {
 /** Adds up lagged products Σ later_i(s) earlier_j(s - lag), lag 0..reach. */
 export class LagSums {
   readonly #channels: number;
+  readonly #grid: LagGrid;
   readonly #reach: number;
+  readonly #kernels: Kernels;
   readonly #spectra: Spectra[] = [];
 
-  constructor(channels: number, reach: number) {
+  constructor(channels: number, grid: LagGrid, reach: number) {
     this.#channels = channels;
+    this.#grid = grid;
     this.#reach = reach;
+    const pairs = channels * channels;
+    const size = longestTransform(reach) + 2;
+    const points = Math.max(0, ...grid.panels.map(({ count }) => count));
+    const spectra = 1.5 * pairs * (size + 16);
+    const transforms = 2 * channels * (size + 16) + 12 * size;
+    const spreading = ROWS * (pairs + points) + pairs * points;
+    this.#kernels = createKernels(8 * Math.ceil(spectra + transforms + spreading) + 65_536);
   }
 
   /**
@@ -57,63 +71,114 @@ export class LagSums {
    * cost    O(nc n log n + nc² n), n the transform's length
    */
   add(earlier: readonly Float64Array[], later: readonly Float64Array[]): void {
+    const kernels = this.#kernels;
     const block = later[0].length;
     const window = earlier[0].length;
-    const history = window - block;
     // Every lag there is must stay clear of the negative ones that wrap around.
-    const spectra = this.#spectraOf(Math.min(window - 1, this.#reach) + block);
-    const { size } = spectra;
-    const half = size / 2;
-    const parts = later.map((last, c) => {
-      const re = new Float64Array(size);
-      const im = new Float64Array(size);
-      re.set(last, history);
-      im.set(earlier[c]);
-      fourier(re, im);
-      return { re, im };
-    });
-    // X = (Z_k + conj Z_-k) / 2 of the block, W = (Z_k - conj Z_-k) / 2i of the window.
-    const channels = this.#channels;
-    const xr = new Float64Array(channels);
-    const xi = new Float64Array(channels);
-    const wr = new Float64Array(channels);
-    const wi = new Float64Array(channels);
-    for (let k = 0; k <= half; k++) {
-      const mirror = (size - k) & (size - 1);
-      for (let c = 0; c < channels; c++) {
-        const { re, im } = parts[c];
-        xr[c] = 0.5 * (re[k] + re[mirror]);
-        xi[c] = 0.5 * (im[k] - im[mirror]);
-        wr[c] = 0.5 * (im[k] + im[mirror]);
-        wi[c] = 0.5 * (re[mirror] - re[k]);
-      }
-      for (let i = 0; i < channels; i++) {
-        for (let j = 0; j < channels; j++) {
-          spectra.re[i * channels + j][k] += xr[i] * wr[j] + xi[i] * wi[j];
-          spectra.im[i * channels + j][k] += xi[i] * wr[j] - xr[i] * wi[j];
+    const { size, pairs } = this.#spectraOf(Math.min(window - 1, this.#reach) + block);
+    const half = size / 2 + 1;
+    const mark = kernels.mark();
+    const x = kernels.alloc64(size);
+    const transform = (row: Float64Array, from: number): Float64Array => {
+      const out = kernels.alloc64(2 * half);
+      x.fill(0);
+      x.set(row, from);
+      kernels.realFft(x, out.subarray(0, half), out.subarray(half), size);
+      return out;
+    };
+    const windows = earlier.map((row) => transform(row, 0));
+    const blocks = later.map((row, c) => (row === earlier[c] ? windows[c] : transform(row, window - block)));
+    for (let from = 0; from < half; from += TILE) {
+      const to = Math.min(half, from + TILE);
+      for (let i = 0; i < this.#channels; i++) {
+        const bRe = blocks[i].subarray(from, to);
+        const bIm = blocks[i].subarray(half + from, half + to);
+        for (let j = 0; j < this.#channels; j++) {
+          const pair = pairs[i * this.#channels + j];
+          kernels.spectraAdd(
+            pair.subarray(from, to),
+            pair.subarray(half + from, half + to),
+            windows[j].subarray(from, to),
+            windows[j].subarray(half + from, half + to),
+            bRe,
+            bIm,
+            to - from,
+          );
         }
       }
     }
+    kernels.release(mark);
   }
 
   /** Scales all that is in. */
   scale(factor: number): void {
     if (factor === 1) return;
-    for (const { re, im } of this.#spectra) {
-      for (const sums of [...re, ...im]) for (let k = 0; k < sums.length; k++) sums[k] *= factor;
+    for (const { pairs } of this.#spectra) for (const pair of pairs) this.#kernels.scale(pair, factor, pair.length);
+  }
+
+  /**
+   * Adds all that is in to sums over the grid's places and starts again from nothing.
+   *
+   * shapes  into (nc × nc × places)
+   * units   any
+   * throws  nothing
+   * source  as `spreadOver`
+   * cost    O(nc² (n log n + reach · points of a panel))
+   */
+  drain(into: Float64Array): void {
+    const kernels = this.#kernels;
+    for (const { size, pairs } of this.#spectra) {
+      const half = size / 2 + 1;
+      const mark = kernels.mark();
+      const x = kernels.alloc64(size);
+      for (const pair of pairs) {
+        kernels.realFftInverse(pair.subarray(0, half), pair.subarray(half), x, size);
+        // The lags take the place of the spectrum they came from.
+        pair.set(x);
+      }
+      kernels.release(mark);
+      this.spread(pairs, Math.min(this.#reach + 1, size), into);
+      for (const pair of pairs) pair.fill(0);
     }
   }
 
-  /** Hands over the lags of every pair and starts again from nothing; pair i·nc + j, Σ later_i(s) earlier_j(s - lag). */
-  drain(visit: (pair: number, lags: Float64Array) => void): void {
-    for (const spectra of this.#spectra) {
-      const { size } = spectra;
-      for (let pair = 0; pair < spectra.re.length; pair++) {
-        const lags = inverse(spectra.re[pair], spectra.im[pair], size);
-        visit(pair, lags.subarray(0, Math.min(this.#reach + 1, size)));
+  /**
+   * Adds sequences by lag to sums over the grid's places.
+   *
+   * shapes  rows (at most nc × nc) of at least `length` lags, into (rows × places)
+   * units   any
+   * throws  nothing
+   * source  as `spreadOver`
+   * cost    O(rows length points)
+   */
+  spread(pairs: readonly Float64Array[], length: number, into: Float64Array): void {
+    const kernels = this.#kernels;
+    const { dense, panels, lags } = this.#grid;
+    const places = lags.length;
+    pairs.forEach((pair, n) => {
+      for (let lag = 0; lag < Math.min(dense, length); lag++) into[n * places + lag] += pair[lag];
+    });
+    const mark = kernels.mark();
+    for (const panel of panels) {
+      const { from, to, place, count } = panel;
+      if (from >= length) break;
+      const sums = kernels.alloc64(pairs.length * count);
+      const rows = kernels.alloc64(ROWS * pairs.length);
+      const shares = kernels.alloc64(ROWS * count);
+      for (let lag = from; lag < Math.min(to, length); lag += ROWS) {
+        const some = Math.min(ROWS, to - lag, length - lag);
+        for (let r = 0; r < some; r++) {
+          sharesOf(panel, lag + r, shares.subarray(r * count, (r + 1) * count));
+          for (let n = 0; n < pairs.length; n++) rows[r * pairs.length + n] = pairs[n][lag + r];
+        }
+        const a = rows.subarray(0, some * pairs.length);
+        kernels.productAdd(sums, a, shares.subarray(0, some * count), some, pairs.length, count);
       }
+      for (let n = 0; n < pairs.length; n++) {
+        for (let q = 0; q < count; q++) into[n * places + place + q] += sums[n * count + q];
+      }
+      kernels.release(mark);
     }
-    this.#spectra.length = 0;
   }
 
   #spectraOf(least: number): Spectra {
@@ -121,27 +186,9 @@ export class LagSums {
     while (size / SIZE_STEP >= Math.max(least, SHORTEST)) size /= SIZE_STEP;
     const found = this.#spectra.find((spectra) => spectra.size === size);
     if (found !== undefined) return found;
-    const make = (): Float64Array[] =>
-      Array.from({ length: this.#channels * this.#channels }, () => new Float64Array(size / 2 + 1));
-    const spectra = { size, re: make(), im: make() };
+    const pairs = Array.from({ length: this.#channels * this.#channels }, () => this.#kernels.alloc64(size + 2));
+    const spectra = { size, pairs };
     this.#spectra.push(spectra);
     return spectra;
   }
-}
-
-/** Real sequence of a half spectrum. */
-function inverse(halfRe: Float64Array, halfIm: Float64Array, size: number): Float64Array {
-  const re = new Float64Array(size);
-  const im = new Float64Array(size);
-  re.set(halfRe);
-  im.set(halfIm);
-  for (let k = 1; k < size / 2; k++) {
-    re[size - k] = re[k];
-    im[size - k] = -im[k];
-  }
-  // The inverse is the forward transform of the conjugate, over the length.
-  for (let k = 0; k < size; k++) im[k] = -im[k];
-  fourier(re, im);
-  for (let k = 0; k < size; k++) re[k] /= size;
-  return re;
 }

@@ -4,7 +4,7 @@
  * teaches nothing and leaves no trace.
  */
 import type { OpenRun, RunEnd, RunSums } from './factors.ts';
-import { type LagGrid, spreadOver } from './lag-grid.ts';
+import type { LagGrid } from './lag-grid.ts';
 import { LagSums, longestTransform } from './lag-sums.ts';
 import { addHeads, addLevels, type BlockOfRun, emptySums, type MutableSums, scaleSums } from './run-sums.ts';
 
@@ -51,7 +51,7 @@ export class RunBook {
     this.#shape = shape;
     const size = longestTransform(reach);
     this.#blockTicks = Math.max(size - reach, shape.longestHorizon + 2);
-    this.#lags = new LagSums(channels, reach);
+    this.#lags = new LagSums(channels, grid, reach);
     this.#sums = emptySums(channels, grid.lags.length, shape.longestHorizon, from?.sums ?? null);
     this.#ends = [...(from?.ends ?? [])];
     const room = reach + this.#blockTicks;
@@ -105,11 +105,7 @@ export class RunBook {
   /** All of it so far; the open run goes on. */
   read(): Books {
     const isKept = this.#isThere !== null && this.#sumUp();
-    const { grid } = this.#shape;
-    const places = grid.lags.length;
-    this.#lags.drain((pair, lags) => {
-      spreadOver(grid, this.#sums.lagged.subarray(pair * places, (pair + 1) * places), [lags]);
-    });
+    this.#lags.drain(this.#sums.lagged);
     const ends = isKept ? [...this.#ends, this.#endOfRun()] : this.#ends;
     return { sums: this.#sums.copy(), ends: [...ends], open: this.#openRun() };
   }
@@ -180,11 +176,8 @@ export class RunBook {
     const { grid, reach, channels } = this.#shape;
     const changes = new Float64Array(channels * grid.lags.length);
     const from = Math.max(0, this.#filled - reach - 1);
-    spreadOver(
-      grid,
-      changes,
-      this.#changes.map((row) => row.slice(from, this.#filled).reverse()),
-    );
+    const byAge = this.#changes.map((row) => row.slice(from, this.#filled).reverse());
+    this.#lags.spread(byAge, byAge[0].length, changes);
     return { weight: 1, isThere: this.#isThere!.slice(), level: this.#level.slice(), changes };
   }
 

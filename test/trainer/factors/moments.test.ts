@@ -1,4 +1,5 @@
 /** Moments from factors against the same sums over the readings. */
+import type { Round } from '@stillwell/runtime/filter';
 import { describe, expect, it } from 'vitest';
 import type { FactorsShape } from '../../../trainer/factors/factors.ts';
 import { FactorsGatherer } from '../../../trainer/factors/gather.ts';
@@ -54,8 +55,12 @@ function seriesOf(from: number, to: number): Series {
   };
 }
 
-function direct(bank: Bank): Moments {
-  const z = values.map((row, c) => row.map((value) => (value - scalings[c]!.mean) / scalings[c]!.scale));
+function direct(bank: Bank, round: Round | null = null): Moments {
+  const z = values.map((row, c) => {
+    const own = row.map((value) => (value - scalings[c]!.mean) / scalings[c]!.scale);
+    const w = c < signalCount ? (round?.weight[c] ?? 0) : 0;
+    return own.map((value, t) => value - w * own[Math.max(0, t - (round?.ticks ?? 0))]!);
+  });
   return gatherMoments({ values: z.map((r) => r.slice(0, ticks - 1)), signalCount, bank, horizon }, [
     { fromIndex: 1, toIndex: ticks - 1 - horizon },
   ])[0]!;
@@ -83,5 +88,8 @@ describe('momentsFromFactors', () => {
     gatherer.take(seriesOf(0, ticks));
     const got = momentsFromFactors(gatherer.end(), { bank: one, horizon, scalings, signalCount, round: null });
     expectAlike(got, direct(one));
+    const round = { ticks: 12, weight: Float64Array.of(1, 0.5) };
+    const left = momentsFromFactors(gatherer.end(), { bank: one, horizon, scalings, signalCount, round });
+    expectAlike(left, direct(one, round));
   });
 });

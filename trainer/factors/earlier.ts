@@ -1,0 +1,29 @@
+/** Factors as what learning knows of the time before a history. */
+import { createHash } from 'node:crypto';
+import type { Earlier } from '../identify/earlier.ts';
+import type { Factors } from './factors.ts';
+import { encodeFactors } from './file.ts';
+import { momentsFromFactors } from './moments.ts';
+
+/**
+ * The time that factors hold.
+ *
+ * shapes  none
+ * units   as Earlier
+ * throws  nothing; its moments as `momentsFromFactors`
+ * source  none
+ * cost    one encoding, for the digest
+ */
+export function earlierOf(factors: Factors): Earlier {
+  return {
+    fromTick: factors.fromTick,
+    toTick: factors.toTick,
+    ticks: factors.ticks,
+    digest: new Uint8Array(createHash('sha256').update(encodeFactors(factors)).digest()),
+    longestRound: factors.longestRound,
+    moments(wish) {
+      const moments = momentsFromFactors(factors, wish);
+      return moments.origins > 0 ? moments : null;
+    },
+  };
+}
