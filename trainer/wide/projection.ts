@@ -6,11 +6,11 @@
 import type { FeatureMap } from './feature-map.ts';
 import { powerOfTwo } from './power-of-two.ts';
 import { openRandom, shuffled } from './random.ts';
-import { drawSigns, flipSigns } from './signs.ts';
+import { copySigned, drawSigns } from './signs.ts';
 import { workspaceOf } from './workspace.ts';
 
 /** Constructions by name. */
-export const PROJECTION_KINDS = ['hadamard', 'blocks', 'sparse'] as const;
+export const PROJECTION_KINDS = ['hadamard', 'sparse'] as const;
 /** One of them. */
 export type ProjectionKind = (typeof PROJECTION_KINDS)[number];
 
@@ -42,11 +42,10 @@ export function johnsonLindenstrauss(points: number, share: number): number {
  * units   as the inputs
  * throws  RangeError for a shape no projection can have
  * source  measured: suite `training`, cases "projection"
- * cost    as blockProjection
+ * cost    as hadamardProjection, which costs no more than a count sketch and loses no distance
  */
-export function createProjection(shape: ProjectionShape, kind: ProjectionKind = 'blocks'): FeatureMap {
-  if (kind === 'hadamard') return hadamardProjection(shape);
-  return kind === 'sparse' ? sparseProjection(shape, SPARSE_SIGNS) : blockProjection(shape);
+export function createProjection(shape: ProjectionShape, kind: ProjectionKind = 'hadamard'): FeatureMap {
+  return kind === 'sparse' ? sparseProjection(shape, SPARSE_SIGNS) : hadamardProjection(shape);
 }
 
 /** Non-zeros in a column of the sparse kind; 1 is the count sketch. */
@@ -69,61 +68,17 @@ export function hadamardProjection(shape: ProjectionShape): FeatureMap {
   const signs = drawSigns(random, inputs);
   const taken = shuffled(random, n).slice(0, outputs).sort();
   const workspace = workspaceOf(n);
-  const { numbers: v, bits } = workspace;
+  const { numbers: v } = workspace;
   const scale = 1 / Math.sqrt(outputs);
   return {
     inputs,
     outputs,
     bytes: 4 * (inputs + outputs + n),
     apply(x, out) {
-      for (let k = 0; k < inputs; k++) v[k] = x[k];
+      copySigned(x, signs, 0, inputs, workspace);
       v.fill(0, inputs);
-      flipSigns(bits, signs, 0, inputs);
       workspace.hadamard();
       for (let j = 0; j < outputs; j++) out[j] = scale * v[taken[j]];
-    },
-  };
-}
-
-/**
- * The vector cut into blocks; each gets random signs, a transform and random signs again, and the blocks are added up. Short
- * transforms stay in the processor's nearest memory, and nothing is gathered from afar.
- *
- * shapes  as ProjectionShape; a block is the least power of two that holds the outputs
- * units   as the inputs
- * throws  RangeError for a shape no projection can have
- * source  Balabanov, Beaupère, Grigori and Lederer, Block subsampled randomized Hadamard transform (2022), section 2; every
- *         block by signs of its own, the same rows taken of all
- * cost    inputs × log block additions; 8 bytes an input
- */
-export function blockProjection(shape: ProjectionShape): FeatureMap {
-  const { inputs, outputs, seed } = checked(shape);
-  const n = powerOfTwo(outputs);
-  const random = openRandom(seed);
-  const blocks = Math.ceil(inputs / n);
-  const before = drawSigns(random, blocks * n);
-  const after = drawSigns(random, blocks * n);
-  const taken = outputs === n ? null : shuffled(random, n).slice(0, outputs).sort();
-  const workspace = workspaceOf(n);
-  const { numbers: v, bits } = workspace;
-  const sum = new Float32Array(n);
-  const scale = 1 / Math.sqrt(outputs);
-  return {
-    inputs,
-    outputs,
-    bytes: 8 * n * (blocks + 1),
-    apply(x, out) {
-      sum.fill(0);
-      for (let at = 0; at < inputs; at += n) {
-        const filled = Math.min(n, inputs - at);
-        for (let k = 0; k < filled; k++) v[k] = x[at + k];
-        v.fill(0, filled);
-        flipSigns(bits, before, at, filled);
-        workspace.hadamard();
-        flipSigns(bits, after, at, n);
-        for (let k = 0; k < n; k++) sum[k] += v[k];
-      }
-      for (let j = 0; j < outputs; j++) out[j] = scale * sum[taken === null ? j : taken[j]];
     },
   };
 }

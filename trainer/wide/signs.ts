@@ -15,3 +15,21 @@ export function drawSigns(random: Random, count: number): Int32Array {
 export function flipSigns(bits: Int32Array, signs: Int32Array, at: number, n: number): void {
   for (let k = 0; k < n; k++) bits[k] ^= signs[at + k];
 }
+
+/** Copies numbers [at, at + n) of x to the front of a workspace, with the signs of the same places. */
+export function copySigned(
+  x: ArrayLike<number>,
+  signs: Int32Array,
+  at: number,
+  n: number,
+  to: { readonly numbers: Float32Array; readonly bits: Int32Array },
+): void {
+  const { numbers, bits } = to;
+  if (x instanceof Float32Array) {
+    const given = new Int32Array(x.buffer, x.byteOffset, x.length);
+    for (let k = 0; k < n; k++) bits[k] = given[at + k] ^ signs[at + k];
+    return;
+  }
+  for (let k = 0; k < n; k++) numbers[k] = x[at + k];
+  flipSigns(bits, signs, at, n);
+}
