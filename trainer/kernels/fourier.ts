@@ -6,6 +6,7 @@ import type { Arena } from './arena.ts';
 import type { FourierLoops, Pointer } from './core.ts';
 import { turn } from './turns.ts';
 
+/** A pass of radix 4 with m factors, or where m is nought one of radix 2. */
 interface Pass {
   readonly m: number;
   readonly s: number;
@@ -14,7 +15,6 @@ interface Pass {
 
 interface Plan {
   readonly passes: readonly Pass[];
-  readonly endsByTwo: boolean;
 }
 
 /** The plans of one memory; each length's tables are made once and stay. */
@@ -39,23 +39,12 @@ export class FourierPlans {
    * cost    4.25 n log2 n operations
    */
   transform(re: Pointer, im: Pointer, n: number): void {
-    if (n === 1) return;
-    const plan = this.#plan(n);
-    const core = this.#core;
     const mark = this.#arena.mark();
-    let [xr, xi, yr, yi] = [re, im, this.#arena.takeRaw(8 * n), this.#arena.takeRaw(8 * n)];
-    for (const { m, s, factors } of plan.passes) {
-      core.pass4(xr, xi, yr, yi, factors, m, s);
-      [xr, xi, yr, yi] = [yr, yi, xr, xi];
-    }
-    if (plan.endsByTwo) {
-      core.pass2(xr, xi, yr, yi, n / 2);
-      [xr, xi, yr, yi] = [yr, yi, xr, xi];
-    }
-    if (xr !== re) {
+    const [yr, yi] = [this.#arena.takeRaw(8 * n), this.#arena.takeRaw(8 * n)];
+    if (this.#run(re, im, yr, yi, n)) {
       const bytes = new Uint8Array(this.#arena.buffer);
-      bytes.copyWithin(re, xr, xr + 8 * n);
-      bytes.copyWithin(im, xi, xi + 8 * n);
+      bytes.copyWithin(re, yr, yr + 8 * n);
+      bytes.copyWithin(im, yi, yi + 8 * n);
     }
     this.#arena.release(mark);
   }
@@ -76,9 +65,15 @@ export class FourierPlans {
       return;
     }
     const half = n / 2;
-    this.#core.split(x, re, im, half);
-    this.transform(re, im, half);
+    const mark = this.#arena.mark();
+    const [yr, yi] = [this.#arena.takeRaw(8 * half), this.#arena.takeRaw(8 * half)];
+    // Begun on the side from which the last pass ends in re and im.
+    const begin = this.#plan(half).passes.length % 2 === 1;
+    const [fromR, fromI, toR, toI] = begin ? [yr, yi, re, im] : [re, im, yr, yi];
+    this.#core.split(x, fromR, fromI, half);
+    this.#run(fromR, fromI, toR, toI, half);
     this.#core.untangle(re, im, this.#turn(half), half);
+    this.#arena.release(mark);
   }
 
   /**
@@ -97,8 +92,25 @@ export class FourierPlans {
     }
     const half = n / 2;
     this.#core.tangle(re, im, this.#turn(half), half);
-    this.transform(im, re, half);
-    this.#core.join(x, re, im, 1 / n, half);
+    const mark = this.#arena.mark();
+    const [yr, yi] = [this.#arena.takeRaw(8 * half), this.#arena.takeRaw(8 * half)];
+    // Real and imaginary parts change places, which turns the transform into its inverse.
+    const isBeyond = this.#run(im, re, yi, yr, half);
+    this.#core.join(x, isBeyond ? yr : re, isBeyond ? yi : im, 1 / n, half);
+    this.#arena.release(mark);
+  }
+
+  /** All passes from x to y and back; true where the result is in y. */
+  #run(xr: Pointer, xi: Pointer, yr: Pointer, yi: Pointer, n: number): boolean {
+    const { passes } = this.#plan(n);
+    let isBeyond = false;
+    for (const { m, s, factors } of passes) {
+      const [fromR, fromI, toR, toI] = isBeyond ? [yr, yi, xr, xi] : [xr, xi, yr, yi];
+      if (m === 0) this.#core.pass2(fromR, fromI, toR, toI, s);
+      else this.#core.pass4(fromR, fromI, toR, toI, factors, m, s);
+      isBeyond = !isBeyond;
+    }
+    return isBeyond;
   }
 
   #plan(n: number): Plan {
@@ -109,7 +121,8 @@ export class FourierPlans {
       const passes: Pass[] = [];
       let left = n;
       for (; left >= 4; left /= 4) passes.push({ m: left / 4, s: n / left, factors: this.#factors(left) });
-      plan = { passes, endsByTwo: left === 2 };
+      if (left === 2) passes.push({ m: 0, s: n / 2, factors: 0 });
+      plan = { passes };
       this.#plans.set(n, plan);
     }
     return plan;

@@ -209,7 +209,28 @@ export function untangle(re: usize, im: usize, factors: usize, n: i32): void {
   f64.store(im, 0);
   f64.store(re + last, r0 - i0);
   f64.store(im + last, 0);
-  for (let k: usize = 8; k << 1 <= last; k += 8) {
+  let k: usize = 8;
+  const half = f64x2.splat(0.5);
+  for (; (k << 1) + 16 < last; k += 16) {
+    const other = last - k - 8;
+    const ar = v128.load(re + k);
+    const ai = v128.load(im + k);
+    const br = reversed(re + other);
+    const bi = reversed(im + other);
+    const sumR = f64x2.mul(half, f64x2.add(ar, br));
+    const sumI = f64x2.mul(half, f64x2.sub(ai, bi));
+    const gapR = f64x2.mul(half, f64x2.add(ai, bi));
+    const gapI = f64x2.mul(half, f64x2.sub(br, ar));
+    const c = v128.load(factors + k);
+    const s = v128.load(sines + k);
+    const turnR = f64x2.sub(f64x2.mul(gapR, c), f64x2.mul(gapI, s));
+    const turnI = f64x2.add(f64x2.mul(gapR, s), f64x2.mul(gapI, c));
+    v128.store(re + k, f64x2.add(sumR, turnR));
+    v128.store(im + k, f64x2.add(sumI, turnI));
+    storeReversed(re + other, f64x2.sub(sumR, turnR));
+    storeReversed(im + other, f64x2.sub(turnI, sumI));
+  }
+  for (; k << 1 <= last; k += 8) {
     const other = last - k;
     const ar = f64.load(re + k);
     const ai = f64.load(im + k);
@@ -238,7 +259,27 @@ export function tangle(re: usize, im: usize, factors: usize, n: i32): void {
   const end = f64.load(re + last);
   f64.store(re, first + end);
   f64.store(im, first - end);
-  for (let k: usize = 8; k << 1 <= last; k += 8) {
+  let k: usize = 8;
+  for (; (k << 1) + 16 < last; k += 16) {
+    const other = last - k - 8;
+    const ar = v128.load(re + k);
+    const ai = v128.load(im + k);
+    const br = reversed(re + other);
+    const bi = reversed(im + other);
+    const sumR = f64x2.add(ar, br);
+    const sumI = f64x2.sub(ai, bi);
+    const turnR = f64x2.sub(ar, br);
+    const turnI = f64x2.add(ai, bi);
+    const c = v128.load(factors + k);
+    const s = v128.load(sines + k);
+    const gapR = f64x2.add(f64x2.mul(turnR, c), f64x2.mul(turnI, s));
+    const gapI = f64x2.sub(f64x2.mul(turnI, c), f64x2.mul(turnR, s));
+    v128.store(re + k, f64x2.sub(sumR, gapI));
+    v128.store(im + k, f64x2.add(sumI, gapR));
+    storeReversed(re + other, f64x2.add(sumR, gapI));
+    storeReversed(im + other, f64x2.sub(gapR, sumI));
+  }
+  for (; k << 1 <= last; k += 8) {
     const other = last - k;
     const ar = f64.load(re + k);
     const ai = f64.load(im + k);
@@ -257,4 +298,13 @@ export function tangle(re: usize, im: usize, factors: usize, n: i32): void {
     f64.store(re + other, sumR + gapI);
     f64.store(im + other, gapR - sumI);
   }
+}
+
+function reversed(at: usize): v128 {
+  const v = v128.load(at);
+  return v128.shuffle<f64>(v, v, 1, 0);
+}
+
+function storeReversed(at: usize, v: v128): void {
+  v128.store(at, v128.shuffle<f64>(v, v, 1, 0));
 }
