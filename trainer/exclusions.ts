@@ -33,10 +33,28 @@ export interface Believed {
   mark(series: Series): Series;
 }
 
-/** Tells apart what a site file excludes of a history. */
-export function believe(history: History, site: Site): Believed {
+/** What the readings before a part of a history said of one entry, where that may still hold. */
+export interface Remembered {
+  /** Since when its signal says so without an end, ms; null: it does not. */
+  readonly sinceMs: number | null;
+  /** Stretches in which it said so: from, to. */
+  readonly stretches: readonly (readonly [fromMs: number, toMs: number])[];
+}
+
+/**
+ * Tells apart what a site file excludes of a history, or of a part of one.
+ *
+ * remembered  by entry, what the part before said; nothing when absent
+ * ahead       the part with readings that follow it, which may exclude time before them; the part itself when absent
+ */
+export function believe(
+  history: History,
+  site: Site,
+  remembered: readonly Remembered[] = [],
+  ahead: History = history,
+): Believed {
   if (site.exclude.length === 0) return { seen: history, taught: history, mark: (series) => series };
-  const found = site.exclude.map((entry) => ({ entry, stretches: stretchesOf(entry, history, site) }));
+  const found = site.exclude.map((entry, k) => ({ entry, stretches: stretchesOf(entry, ahead, site, remembered[k]) }));
   const faulty = found.filter(({ entry }) => entry.signals !== null);
   return {
     seen: withoutReadings(history, site, faulty),
@@ -61,24 +79,46 @@ export function ticksLeft({ excluded }: Series, fromIndex: number, toIndex: numb
   return left;
 }
 
+/** What a part of a history, and what was remembered before it, says to the part that begins at `fromMs`. */
+export function remember(
+  history: History,
+  site: Site,
+  before: readonly Remembered[],
+  fromMs: number,
+): readonly Remembered[] {
+  return site.exclude.map((entry, k) => {
+    if ('fromMs' in entry) return { sinceMs: null, stretches: [] };
+    const said = saidOf(entry, history, site, before[k]);
+    const open = said.at(-1)?.toMs === Number.POSITIVE_INFINITY ? said.pop() : undefined;
+    const lasting = said.filter(({ toMs }) => toMs + entry.afterMs > fromMs);
+    return { sinceMs: open?.fromMs ?? null, stretches: lasting.map((one) => [one.fromMs, one.toMs] as const) };
+  });
+}
+
 /** Where an entry holds: its own span, or while its signal says so, wherever that was read. */
-function stretchesOf(entry: Exclusion, history: History, site: Site): Stretch[] {
+function stretchesOf(entry: Exclusion, history: History, site: Site, before?: Remembered): Stretch[] {
   if ('fromMs' in entry) return [{ fromMs: entry.fromMs, toMs: entry.toMs }];
-  const { when, beforeMs, afterMs } = entry;
-  const channel = channelsOf(site).findIndex(({ name }) => name === when.signal);
+  const { beforeMs, afterMs } = entry;
   return joined(
-    saying(history.channels[channel] as ChannelReadings, when).map(({ fromMs, toMs }) => ({
+    saidOf(entry, history, site, before).map(({ fromMs, toMs }) => ({
       fromMs: fromMs - beforeMs,
       toMs: toMs + afterMs,
     })),
   );
 }
 
+/** When the signal of an entry said so, what was remembered first. */
+function saidOf({ when }: ExcludedWhile, history: History, site: Site, before?: Remembered): Stretch[] {
+  const channel = channelsOf(site).findIndex(({ name }) => name === when.signal);
+  const earlier = (before?.stretches ?? []).map(([fromMs, toMs]) => ({ fromMs, toMs }));
+  return [...earlier, ...saying(history.channels[channel] as ChannelReadings, when, before?.sinceMs ?? Number.NaN)];
+}
+
 /** From the first reading that says so to the next that does not; a reading holds until the next. */
-function saying({ times, values }: ChannelReadings, { is, level }: ExcludedWhile['when']): Stretch[] {
+function saying({ times, values }: ChannelReadings, { is, level }: ExcludedWhile['when'], sinceMs: number): Stretch[] {
   const order = timeOrder(times);
   const stretches: Stretch[] = [];
-  let since = Number.NaN;
+  let since = sinceMs;
   for (let n = 0; n < times.length; n++) {
     const i = order === null ? n : (order[n] as number);
     const value = values[i] as number;

@@ -2,7 +2,7 @@
  * A history from files to ticks, surveyed: the one door for every command that learns from or scores on history.
  */
 import type { Site } from '@stillwell/protocol';
-import { believe } from '../exclusions.ts';
+import { believe, type Remembered } from '../exclusions.ts';
 import type { History } from './history.ts';
 import { plausibilityOf } from './plausible.ts';
 import { type ReadOptions, readHistory } from './read.ts';
@@ -24,10 +24,16 @@ export interface LoadedHistory {
  * ones too: a sensor's step is no knowledge of the future, and every reading must be given back exactly.
  *
  * judgedShare  share of the ticks at the end that will judge, and so say nothing of which readings are plausible
+ * remembered   what readings before this history say of the time that must not teach
  * throws       TrainError 'history' as layOnTicks does
  */
-export function prepare(history: History, site: Site, judgedShare = 0): LoadedHistory {
-  const { seen, taught, mark } = believe(history, site);
+export function prepare(
+  history: History,
+  site: Site,
+  judgedShare = 0,
+  remembered: readonly Remembered[] = [],
+): LoadedHistory {
+  const { seen, taught, mark } = believe(history, site, remembered);
   const lattices = findLattices(taught, site);
   const plausibility = plausibilityOf(taught, site, judgedFromMs(history, site.tickMs, judgedShare));
   const laid = layOnTicks(history, site, lattices, plausibility);

@@ -137,7 +137,10 @@ export class LongReading {
     const file = this.#files.get(path) as InputFile;
     const times = new TimeReader(this.#zone, this.times);
     const from = { state, previous };
-    if (file.kind !== 'Parquet') return new TextStream(file, this.#site, this.#span, times, from);
+    if (file.kind !== 'Parquet') {
+      const { blockBytes } = this.#settings.limits;
+      return new TextStream(file, this.#site, this.#span, times, from, blockBytes);
+    }
     const channels = this.#site.signals.length + this.#site.inputs.length;
     const gathering = new Gathering(channels, this.#span, true);
     return new ColumnStream(

@@ -6,6 +6,7 @@ import { existsSync } from 'node:fs';
 import { dirname } from 'node:path';
 import type { Site } from '@stillwell/protocol';
 import { TrainError } from '../errors.ts';
+import type { Remembered } from '../exclusions.ts';
 import { channelsOf } from './channels.ts';
 import { ColumnsEngine } from './columns-engine.ts';
 import { findFiles } from './find-files.ts';
@@ -73,7 +74,7 @@ export async function loadLong(
   const files = findFiles(paths, site.site);
   const isGoingOn = resumeFile !== undefined && existsSync(resumeFile);
   const engine = new ColumnsEngine(options.spillIn ?? (resumeFile === undefined ? undefined : dirname(resumeFile)));
-  let read: { readonly history: History; readonly older: OlderFacts | null };
+  let read: Read;
   try {
     const short = isGoingOn ? null : await readShort(files, site, options, limits.longFrom, engine);
     if (short !== null) return { ...prepare(short, site, judgedShare), older: null, done: () => {} };
@@ -84,7 +85,14 @@ export async function loadLong(
   const done = (): void => {
     if (resumeFile !== undefined) forgetPlace(resumeFile);
   };
-  return { ...prepare(read.history, site, judgedShare), older: read.older, done };
+  return { ...prepare(read.history, site, judgedShare, read.remembered), older: read.older, done };
+}
+
+/** What came of a reading in long mode. */
+interface Read {
+  readonly history: History;
+  readonly older: OlderFacts | null;
+  readonly remembered: readonly Remembered[];
 }
 
 /** Reads in long mode; Parquet files whose rows turn out to lie too far out of order are sorted in another attempt. */
@@ -94,7 +102,7 @@ async function readLong(
   options: LongOptions & { readonly limits: LongLimits },
   sinkFor: () => OlderSink,
   engine: ColumnsEngine,
-): Promise<{ readonly history: History; readonly older: OlderFacts | null }> {
+): Promise<Read> {
   const { resumeFile } = options;
   const belongs = resumeFile === undefined ? null : belongsOf(files, site, options);
   const place =
@@ -105,7 +113,7 @@ async function readLong(
     try {
       await reading.begin(from);
       await reading.through();
-      return historyOf(reading, site);
+      return readOf(reading, site);
     } catch (cause) {
       if (!(cause instanceof LateReading) || !reading.canSort(cause.path)) throw cause;
       toSort.add(cause.path);
@@ -124,7 +132,7 @@ function belongsOf(
   return { asked, files: files.map(identityOf) };
 }
 
-function historyOf(reading: LongReading, site: Site): { readonly history: History; readonly older: OlderFacts | null } {
+function readOf(reading: LongReading, site: Site): Read {
   const { recent, merge, times } = reading;
   const fromMs = recent.cutTick * site.tickMs;
   const history: History = {
@@ -134,5 +142,6 @@ function historyOf(reading: LongReading, site: Site): { readonly history: Histor
     zone: times.zone,
     clockChanges: times.changes.filter(({ atMs }) => atMs >= fromMs),
   };
-  return { history, older: reading.older.facts(merge.rows, merge.outOfOrder) };
+  const { older } = reading;
+  return { history, older: older.facts(merge.rows, merge.outOfOrder), remembered: older.remembered };
 }

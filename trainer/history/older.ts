@@ -6,7 +6,7 @@
  */
 import { createHash } from 'node:crypto';
 import type { Signal, Site } from '@stillwell/protocol';
-import { believe } from '../exclusions.ts';
+import { believe, type Remembered, remember } from '../exclusions.ts';
 import { TickValue } from './aggregate.ts';
 import { channelsOf } from './channels.ts';
 import type { ChannelReadings, History } from './history.ts';
@@ -53,6 +53,8 @@ export interface OlderState {
   readonly digest: string;
   readonly samples: readonly ThinnedState[];
   readonly counters: readonly (readonly [number | null, number | null])[];
+  readonly plausible: readonly (readonly [low: number | null, high: number | null])[];
+  readonly remembered: readonly Remembered[];
 }
 
 const NOTHING = new Float64Array(0);
@@ -68,6 +70,7 @@ export class OlderTicks {
   readonly #samples: readonly ThinnedSample[];
   readonly #readings: number[];
   #plausible: Plausible[] = [];
+  #remembered: readonly Remembered[] = [];
   #fromTick: number | null = null;
   #toTick: number | null = null;
   #chunks = 0;
@@ -86,18 +89,30 @@ export class OlderTicks {
   /** Hands on every chunk that is due; at the end also the rest before the window. */
   handOn(recent: RecentReadings, isLast: boolean): void {
     for (let due = recent.due(isLast); due !== null; due = recent.due(isLast)) {
-      this.#take(channelsBefore(recent, due.toTick, this.#channels), due.fromTick, due.toTick);
+      const channels = channelsBefore(recent, due.toTick, this.#channels);
+      this.#take(channels, this.#ahead(recent, due.toTick, channels), due.fromTick, due.toTick);
       recent.handOn(due.toTick);
     }
   }
 
-  #take(channels: readonly ChannelReadings[], fromTick: number, toTick: number): void {
+  /** Readings of a chunk and, where an exclusion reaches back from what its signal says, of the time after it. */
+  #ahead(recent: RecentReadings, toTick: number, chunk: readonly ChannelReadings[]): readonly ChannelReadings[] {
+    const before = this.#site.exclude.map((entry) => ('fromMs' in entry ? 0 : entry.beforeMs));
+    const furthest = Math.max(0, ...before);
+    if (furthest === 0) return chunk;
+    return channelsBefore(recent, toTick + Math.ceil(furthest / this.#site.tickMs), this.#channels);
+  }
+
+  #take(
+    channels: readonly ChannelReadings[],
+    ahead: readonly ChannelReadings[],
+    fromTick: number,
+    toTick: number,
+  ): void {
     this.#look(channels);
-    const history: History = {
-      ...{ channels, signalCount: this.#site.signals.length },
-      ...{ files: [], zone: null, clockChanges: [] },
-    };
-    const { seen, mark } = believe(history, this.#site);
+    const history = historyOf(channels, this.#site);
+    const { seen, mark } = believe(history, this.#site, this.#remembered, historyOf(ahead, this.#site));
+    this.#remembered = remember(history, this.#site, this.#remembered, toTick * this.#site.tickMs);
     const { tickMs } = this.#site;
     const span = { tickMs, first: fromTick, ticks: toTick - fromTick };
     const values = seen.channels.map((channel, c) => {
@@ -138,6 +153,11 @@ export class OlderTicks {
     if (excluded !== undefined) for (const flag of excluded.isExcluded) this.#excludedTicks += flag;
   }
 
+  /** What was read so far says of time that must not teach after it. */
+  get remembered(): readonly Remembered[] {
+    return this.#remembered;
+  }
+
   /** What was handed on; null where nothing was. */
   facts(rows: number, outOfOrder: number): OlderFacts | null {
     if (this.#fromTick === null || this.#toTick === null) return null;
@@ -151,12 +171,14 @@ export class OlderTicks {
   }
 
   state(): OlderState {
-    const orNull = (value: number): number | null => (Number.isNaN(value) ? null : value);
+    const orNull = (value: number): number | null => (Number.isFinite(value) ? value : null);
     return {
       ...{ fromTick: this.#fromTick, toTick: this.#toTick, chunks: this.#chunks, readings: this.#readings },
       ...{ excludedTicks: this.#excludedTicks, digest: Buffer.from(this.#digest).toString('hex') },
       samples: this.#samples.map((sample) => sample.state()),
       counters: this.#ticks.map(({ carried }) => [orNull(carried[0]), orNull(carried[1])] as const),
+      plausible: this.#plausible.map(({ low, high }) => [orNull(low), orNull(high)] as const),
+      remembered: this.#remembered,
     };
   }
 
@@ -172,10 +194,20 @@ export class OlderTicks {
     state.samples.forEach((sample, c) => {
       this.#samples[c]?.restore(sample);
     });
+    this.#remembered = state.remembered;
+    this.#plausible = state.plausible.map(([low, high], c) => ({
+      low: low ?? Number.NEGATIVE_INFINITY,
+      high: high ?? Number.POSITIVE_INFINITY,
+      isDeclared: this.#channels[c]?.range !== null,
+    }));
     state.counters.forEach(([value, tick], c) => {
       this.#ticks[c]?.carry([value ?? Number.NaN, tick ?? Number.NaN]);
     });
   }
+}
+
+function historyOf(channels: readonly ChannelReadings[], site: Site): History {
+  return { channels, signalCount: site.signals.length, files: [], zone: null, clockChanges: [] };
 }
 
 /** The readings before a tick by channel, in order of time. */

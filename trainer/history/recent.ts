@@ -14,6 +14,8 @@ export interface LongLimits {
   readonly longFrom: number;
   readonly recentTicks: number;
   readonly chunkTicks: number;
+  /** Stored bytes of a text file read at once; a few thousand rows' when absent. */
+  readonly blockBytes?: number;
 }
 
 /** Readings of channels that share their times. */

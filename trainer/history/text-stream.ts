@@ -41,7 +41,7 @@ export class TextStream implements ReadingStream {
   #account: FileRead | null = null;
   bytesDone = 0;
 
-  constructor(file: InputFile, site: Site, span: Span, times: TimeReader, from: StreamStart) {
+  constructor(file: InputFile, site: Site, span: Span, times: TimeReader, from: StreamStart, blockBytes = BLOCK_BYTES) {
     const channels = site.signals.length + site.inputs.length;
     this.path = file.path;
     this.gathering = new Gathering(channels, span, true);
@@ -52,7 +52,7 @@ export class TextStream implements ReadingStream {
     if (state !== null) this.#restore(state);
     else from.previous?.carryTo(this.gathering);
     this.#blocks = readBlocks(file, (done) => (this.bytesDone = done), {
-      blockBytes: BLOCK_BYTES,
+      blockBytes,
       fromByte: this.#byte,
     });
   }

@@ -1,8 +1,7 @@
 /**
  * Text packed with Zstandard (RFC 8878), which the platform cannot unpack: the columnar library reads it as raw lines, and
  * our own scan goes on from there, so that refusals are the same. That library takes a file that was cut off for a whole
- * one, so the frames are first gone through by their headers alone. Blank lines are lost on the way: lines after them are
- * counted without.
+ * one, so the frames are first gone through by their headers alone.
  */
 import { closeSync, fstatSync, openSync, readSync } from 'node:fs';
 import { TrainError } from '../errors.ts';
@@ -75,7 +74,7 @@ export async function* unpackedLines(path: string): AsyncGenerator<Buffer> {
   const engine = new ColumnsEngine();
   const question =
     `SELECT line FROM read_csv(${quotedPath(path)}, auto_detect = false, header = false, columns = {'line': 'VARCHAR'}, ` +
-    `delim = '', quote = '', escape = '', compression = 'zstd', new_line = '\\n', strict_mode = false, parallel = false, max_line_size = ${MAX_LINE_BYTES}, ` +
+    `delim = '', quote = '', escape = '', compression = 'zstd', strict_mode = false, parallel = false, max_line_size = ${MAX_LINE_BYTES}, ` +
     `buffer_size = ${2 * MAX_LINE_BYTES}) UNION ALL SELECT ${quoted(END)}`;
   try {
     const connection = await engine.connect();
