@@ -4,6 +4,7 @@
  */
 import type { Site } from '@stillwell/protocol';
 import type { FileReader } from '../history/file-reader.ts';
+import { findFiles } from '../history/find-files.ts';
 import { readerFor } from '../history/format.ts';
 import { Gathering } from '../history/gathering.ts';
 import { type InputFile, inspectFile } from '../history/input-file.ts';
@@ -42,7 +43,7 @@ export interface FileExtent {
 }
 
 /**
- * Estimates.
+ * Estimates. Files, folders and patterns are found as `fit` finds them.
  *
  * zone    of times that carry none
  * throws  TrainError 'file' or 'history' where a file cannot be read, as reading it would
@@ -53,16 +54,16 @@ export async function historyExtent(
   zone: string | null,
   span: TimeSpan,
 ): Promise<Extent> {
-  const inputs = paths.map(inspectFile);
+  const inputs = findFiles(paths, site.site).map(inspectFile);
   const parts: FileExtent[] = [];
   for (const input of inputs)
-    parts.push(input.kind === 'Parquet' ? await parquetExtent(input, site) : textExtent(input, site, zone));
+    parts.push(input.kind === 'Parquet' ? await parquetExtent(input, site, zone) : await textExtent(input, site, zone));
   const kept = parts.map((part) => within(part, span));
   const fromMs = Math.min(...kept.map((part) => part.fromMs));
   const toMs = Math.max(...kept.map((part) => part.toMs));
   const sum = (of: (part: FileExtent) => number): number => kept.reduce((total, part) => total + of(part), 0);
   return {
-    files: paths.length,
+    files: inputs.length,
     bytes: inputs.reduce((total, { bytes }) => total + bytes, 0),
     textBytes: parts.reduce((total, { textBytes }) => total + textBytes, 0),
     rows: Math.round(sum(({ rows }) => rows)),
@@ -91,8 +92,8 @@ function within(part: FileExtent, { fromMs = Number.NEGATIVE_INFINITY, untilMs =
   };
 }
 
-function textExtent(input: InputFile, site: Site, zone: string | null): FileExtent {
-  const sample = sampleText(input);
+async function textExtent(input: InputFile, site: Site, zone: string | null): Promise<FileExtent> {
+  const sample = await sampleText(input);
   const head = looked(input.path, [sample.head], site, zone);
   if (sample.tail === null && sample.textBytes === sample.head.length)
     return { ...head, textBytes: sample.textBytes, isExact: true };

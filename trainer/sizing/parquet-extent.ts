@@ -1,62 +1,65 @@
-/** What a Parquet file says of itself: rows, and the least and largest time of its row groups. No row is read. */
-import type { Site } from '@stillwell/protocol';
-import { TrainError } from '../errors.ts';
+/** What a Parquet file says of itself: its rows, and the first and last of its times. Of the readings none is read. */
+import { parseInstant, type Site } from '@stillwell/protocol';
 import { channelsOf } from '../history/channels.ts';
+import { type ColumnPlan, planColumns } from '../history/column-plan.ts';
+import { ask, ColumnsEngine, named, quotedPath } from '../history/columns-engine.ts';
 import type { InputFile } from '../history/input-file.ts';
+import { type Resolved, ZoneRules } from '../history/zone.ts';
 import type { FileExtent } from './history-extent.ts';
 
-const TIME_TYPE = /^(TIMESTAMP|DATE)/;
+/** Counts since 1970 from here on are milliseconds: as seconds they would lie past the year 5138. */
+const FIRST_EPOCH_MS = 1e11;
 
 /**
- * Reads the file's footer.
+ * Looks at a file's footer and its column of times.
  *
- * throws  TrainError 'history' where it is no Parquet file, or no column holds times
+ * zone    of times that carry none; null: UTC
+ * throws  TrainError 'history' where it is no Parquet file, or its columns are not what the site asks for
  */
-export async function parquetExtent({ path }: InputFile, site: Site): Promise<FileExtent> {
-  // The library takes a third of a second to load, which text files need not wait for.
-  const { DuckDBInstance } = await import('@duckdb/node-api');
-  const instance = await DuckDBInstance.create(':memory:');
-  const connection = await instance.connect();
-  const rowsOf = async (query: string): Promise<unknown[][]> =>
-    (await connection.runAndReadAll(query, [path])).getRows();
+export async function parquetExtent({ path }: InputFile, site: Site, zone: string | null): Promise<FileExtent> {
+  const engine = new ColumnsEngine();
   try {
-    const columns = (await rowsOf(
-      'SELECT column_name, column_type FROM (DESCRIBE SELECT * FROM read_parquet($1))',
-    )) as [string, string][];
-    const time = columns.find(([, type]) => TIME_TYPE.test(type))?.[0];
-    if (time === undefined) throw noTime(path, columns);
-    const quoted = `"${time.replaceAll('"', '""')}"`;
-    const [[rows, from, to]] = (await rowsOf(
-      `SELECT count(*), epoch_ms(min(${quoted})::TIMESTAMP), epoch_ms(max(${quoted})::TIMESTAMP) FROM read_parquet($1)`,
-    )) as [[bigint, bigint | null, bigint | null]];
-    const names = new Set(columns.map(([name]) => name));
-    const held = channelsOf(site).filter(({ column }) => names.has(column)).length;
+    const connection = await engine.connect();
+    const channels = channelsOf(site).map(({ column }) => column);
+    const plan = await planColumns(connection, path, channels);
+    const time = named(plan.timeName);
+    const end =
+      plan.time === 'instant' || plan.time === 'local' ? (one: string) => `epoch_ms(${one}::TIMESTAMP)` : String;
+    const [found] = await ask(
+      connection,
+      path,
+      `SELECT ${end(`min(${time})`)} AS first, ${end(`max(${time})`)} AS last FROM read_parquet(${quotedPath(path)}, hive_partitioning = false)`,
+    );
+    const place = (value: unknown): number => placeOf(value, plan, zone);
     return {
       textBytes: 0,
-      rows: Number(rows),
+      rows: plan.rows,
       // A long table has one reading a row.
-      readings: Number(rows) * Math.max(1, held),
-      fromMs: from === null ? Number.POSITIVE_INFINITY : Number(from),
-      toMs: to === null ? Number.NEGATIVE_INFINITY : Number(to),
+      readings: plan.rows * Math.max(1, plan.channels.length),
+      fromMs: found?.first === null ? Number.POSITIVE_INFINITY : place(found?.first),
+      toMs: found?.last === null ? Number.NEGATIVE_INFINITY : place(found?.last),
       isExact: true,
     };
-  } catch (cause) {
-    if (cause instanceof TrainError) throw cause;
-    throw new TrainError(
-      'history',
-      `${path}: expected a Parquet file, got one that cannot be read (${(cause as Error).message.split('\n')[0]}); export it again`,
-      { cause },
-    );
   } finally {
-    connection.closeSync();
-    instance.closeSync();
+    engine.close();
   }
 }
 
-function noTime(path: string, columns: readonly [string, string][]): TrainError {
-  const found = columns.map(([name, type]) => `${name} ${type}`).join(', ');
-  return new TrainError(
-    'history',
-    `${path}: expected a column of timestamps, got ${found}; write the time as a TIMESTAMP column`,
-  );
+/** A time as the file has it, in ms since 1970 UTC. */
+function placeOf(value: unknown, { time }: ColumnPlan, zone: string | null): number {
+  if (time === 'text') {
+    const text = String(value);
+    const instant = parseInstant(text.replace(' ', 'T'));
+    return instant ?? inZone(Date.parse(`${text.replace(' ', 'T')}Z`), zone);
+  }
+  const count = Number(value);
+  if (time === 'count') return count >= FIRST_EPOCH_MS ? count : 1000 * count;
+  return time === 'instant' ? count : inZone(count, zone);
+}
+
+function inZone(localMs: number, zone: string | null): number {
+  if (zone === null) return localMs;
+  const out: Resolved = { utcMs: 0, kind: 'plain', changeMs: 0 };
+  new ZoneRules(zone).resolve(localMs, Number.NEGATIVE_INFINITY, false, out);
+  return out.utcMs;
 }

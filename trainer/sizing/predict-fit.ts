@@ -1,6 +1,7 @@
 /** What a fit will take: memory, time, bundle, factors, and what other ways of learning the same would have needed. */
 import type { Site } from '@stillwell/protocol';
 import { BUNDLE, BYTES, PROBE_SECONDS, SECONDS } from './constants.ts';
+import { factorsBytes } from './factors-size.ts';
 import { bundleWork, type FitShape, fitShape, memoryWork, priced, timeWork } from './fit-work.ts';
 import type { Extent } from './history-extent.ts';
 import { covarianceOf, gramOf, type Matrix } from './matrix-size.ts';
@@ -16,7 +17,7 @@ export interface FitPrediction {
   readonly seconds: number;
   readonly bundleBytes: number;
   readonly maxBundleBytes: number;
-  /** Null where the history is too short for any to be written. */
+  /** Null where the site has too many channels for any. */
   readonly factorsBytes: number | null;
   /** Of the widest bank's features. */
   readonly covariance: Matrix;
@@ -43,7 +44,7 @@ export function predictFit(site: Site, extent: Extent, options: PredictOptions):
     seconds: priced(timeWork(shape), SECONDS) * (options.probe / PROBE_SECONDS),
     bundleBytes: Math.min(options.maxBytes, Math.round(priced(bundleWork(shape), BUNDLE))),
     maxBundleBytes: options.maxBytes,
-    factorsBytes: null,
+    factorsBytes: factorsBytes(site, extent.ticks),
     covariance: covarianceOf(features),
     gram: gramOf(extent.ticks),
   };

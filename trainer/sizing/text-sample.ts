@@ -1,11 +1,12 @@
 /**
  * The first and last lines of a text file, and how long it is once unpacked. Of a packed file there is no last line to be had
- * without unpacking it all; its length comes from its own trailer, where that can be, else from how its beginning packs.
+ * without unpacking it all; its length is what it says of itself, where that can be, else what its beginning comes to. Only
+ * a Zstandard file that does not say its length is read through.
  */
 import { closeSync, openSync, readSync } from 'node:fs';
 import { constants, gunzipSync } from 'node:zlib';
 import { TrainError } from '../errors.ts';
-import type { InputFile } from '../history/input-file.ts';
+import { type InputFile, readBlocks } from '../history/input-file.ts';
 
 /** Bytes looked at, at the beginning and at the end. */
 const HEAD_BYTES = 1 << 20;
@@ -31,7 +32,8 @@ export interface TextSample {
  *
  * throws  TrainError 'file' where the beginning cannot be unpacked, or holds no line
  */
-export function sampleText(input: InputFile): TextSample {
+export async function sampleText(input: InputFile): Promise<TextSample> {
+  if (input.kind === 'zstd') return sampleZstandard(input);
   return input.kind === 'gzip' ? samplePacked(input) : samplePlain(input);
 }
 
@@ -62,6 +64,36 @@ function samplePacked({ path, bytes }: InputFile): TextSample {
   const guess = (text.length * bytes) / stored.length;
   const head = wholeLines(path, text);
   return { head, firstLine: firstLineOf(path, head), tail: null, textBytes: trailerLength(path, bytes, guess) };
+}
+
+async function sampleZstandard(input: InputFile): Promise<TextSample> {
+  const { path, bytes } = input;
+  const said = zstandardLength(path);
+  const parts: Buffer[] = [];
+  let held = 0;
+  let length = 0;
+  for await (const block of readBlocks(input, () => {})) {
+    length += block.length;
+    if (held < HEAD_BYTES) parts.push(block);
+    held += block.length;
+    // A length below that of the file is of its first part alone.
+    if (said !== null && said > bytes && held >= HEAD_BYTES) break;
+  }
+  const head = Buffer.concat(parts);
+  const textBytes = said !== null && said > bytes ? said : length;
+  return { head, firstLine: firstLineOf(path, head), tail: null, textBytes: Math.max(textBytes, head.length) };
+}
+
+/** The length that a frame's header says (RFC 8878, section 3.1.1.1); null where it does not. */
+function zstandardLength(path: string): number | null {
+  const head = readAt(path, 0, 18);
+  const descriptor = head[4];
+  const isSingle = (descriptor & 32) !== 0;
+  const flag = descriptor >> 6;
+  const at = 5 + (isSingle ? 0 : 1) + ([0, 1, 2, 4][descriptor & 3] as number);
+  if (flag === 0) return isSingle ? head[at] : null;
+  if (flag === 1) return head.readUInt16LE(at) + 256;
+  return flag === 2 ? head.readUInt32LE(at) : Number(head.readBigUInt64LE(at));
 }
 
 /** Members of a gzip file end in their length modulo 2^32 (RFC 1952, section 2.3.1); of several members it is the last one's. */
