@@ -4,6 +4,7 @@
  * [V; L⁻¹E] into the new basis. L⁻¹E is never formed: it is folded into the turning. Where little is lost by it, neither is
  * E: E E' = X X' − P P', and the turning goes to V and X straight.
  */
+import { createKernels, type Kernels } from '../kernels/kernels.ts';
 import type { Fold } from './incremental-svd.ts';
 import { diagonalise } from './small-eigen.ts';
 import { measureOrthogonality, ORTHOGONALITY_BOUND, orthonormaliseRows } from './tall-orthonormal.ts';
@@ -22,18 +23,24 @@ const VANISHED_OF_LEFT = 1e-13;
 
 /** See the file's head. Memory: (2 rank + block) rows. */
 export class BlockFold implements Fold {
+  readonly #kernels: Kernels;
   readonly #most: number;
   /** Rows 0 … rank − 1 are the basis, rows #most … the block: fixed places, so that rows can be written at any time. */
   readonly #rows: TallRows;
+  /** ((most + block) × block) products of all rows with the block's: P' above, X X' from row #most. */
+  readonly #all: Float64Array;
   readonly #p: Float64Array;
   readonly #again: Float64Array;
   readonly #left: Float64Array;
-  readonly #squares: Float64Array;
   readonly #factor: Float64Array;
+  readonly #joint: Float64Array;
   readonly #small: Float64Array;
+  readonly #share: Float64Array;
+  readonly #taken: Float64Array;
+  readonly #turn: Float64Array;
+  readonly #squares: Float64Array;
   readonly #d: Float64Array;
   readonly #e: Float64Array;
-  readonly #turn: Float64Array;
   readonly #pivots: Int32Array;
   readonly values: Float64Array;
   rank = 0;
@@ -44,19 +51,31 @@ export class BlockFold implements Fold {
 
   constructor(columns: number, most: number, block: number) {
     const size = most + block;
+    const kernels = createKernels(BlockFold.bytes(columns, most, block));
+    this.#kernels = kernels;
     this.#most = most;
-    this.#rows = new TallRows(size, most, columns);
-    this.#p = new Float64Array(block * most);
-    this.#again = new Float64Array(block * most);
-    this.#left = new Float64Array(block * block);
-    this.#squares = new Float64Array(block);
+    this.#rows = new TallRows(kernels, size, most, columns);
+    this.#all = kernels.alloc64(size * block);
+    this.#p = kernels.alloc64(block * most);
+    this.#again = kernels.alloc64(block * most);
+    this.#left = kernels.alloc64(block * block);
     this.#factor = new Float64Array(block * block);
-    this.#small = new Float64Array(size * size);
+    this.#joint = kernels.alloc64(block * size);
+    this.#small = kernels.alloc64(size * size);
+    this.#share = kernels.alloc64(most * block);
+    this.#taken = kernels.alloc64(most * most);
+    this.#turn = kernels.alloc64(most * size);
+    this.#squares = new Float64Array(block);
     this.#d = new Float64Array(size);
     this.#e = new Float64Array(size);
-    this.#turn = new Float64Array(most * size);
     this.#pivots = new Int32Array(block);
     this.values = new Float64Array(most);
+  }
+
+  /** Bytes that such a fold takes in the kernels' memory. */
+  static bytes(columns: number, most: number, block: number): number {
+    const size = most + block;
+    return TallRows.bytes(size, most, columns) + 8 * (size * (size + most + 3 * block) + (most + block) ** 2) + 1024;
   }
 
   rowAt(i: number): Float64Array {
@@ -87,25 +106,22 @@ export class BlockFold implements Fold {
   /** P, and the products of what is left of the rows; true where the rows themselves became what is left of them. */
   #project(count: number): boolean {
     const k = this.rank;
-    const [p, left, squares] = [this.#p, this.#left, this.#squares];
-    this.#rows.products(this.#most, count, 0, k, p);
-    this.#rows.products(this.#most, count, this.#most, count, left);
-    for (let i = 0; i < count; i++) squares[i] = left[i * count + i];
+    const [all, p, left, squares, most] = [this.#all, this.#p, this.#left, this.#squares, this.#most];
+    this.#rows.products(0, most + count, most, count, all);
+    for (let i = 0; i < count; i++) for (let c = 0; c < k; c++) p[i * k + c] = all[c * count + i];
+    this.#kernels.multiplyTransposed(left, p, p, count, k, count);
     let least = 1;
-    for (let i = 0; i < count; i++) {
-      for (let j = 0; j < count; j++) {
-        let sum = 0;
-        for (let c = 0; c < k; c++) sum += p[i * k + c] * p[j * k + c];
-        left[i * count + j] -= sum;
-      }
+    for (let i = 0, at = 0; i < count; i++) {
+      for (let j = 0; j < count; j++, at++) left[at] = all[most * count + at] - left[at];
+      squares[i] = all[(most + i) * count + i];
       if (squares[i] > 0) least = Math.min(least, left[i * count + i] / squares[i]);
     }
     if (k === 0 || least > SMALL_LEFT) return false;
-    this.#rows.takeAway(p, k, this.#most, count);
-    this.#rows.products(this.#most, count, 0, k, this.#again);
-    this.#rows.takeAway(this.#again, k, this.#most, count);
+    this.#rows.takeAway(p, k, most, count);
+    this.#rows.products(most, count, 0, k, this.#again);
+    this.#rows.takeAway(this.#again, k, most, count);
     for (let i = 0; i < count * k; i++) p[i] += this.#again[i];
-    this.#rows.products(this.#most, count, this.#most, count, left);
+    this.#rows.products(most, count, most, count, left);
     return true;
   }
 
@@ -113,15 +129,14 @@ export class BlockFold implements Fold {
   #decide(count: number, found: number): void {
     const k = this.rank;
     const size = k + found;
-    const [small, row] = [this.#small, this.#e];
+    const [small, joint] = [this.#small, this.#joint];
+    for (let i = 0; i < count; i++) {
+      joint.set(this.#p.subarray(i * k, i * k + k), i * size);
+      joint.set(this.#factor.subarray(i * count, i * count + found), i * size + k);
+    }
     small.fill(0, 0, size * size);
     for (let c = 0; c < k; c++) small[c * size + c] = this.values[c] * this.values[c];
-    for (let i = 0; i < count; i++) {
-      row.set(this.#p.subarray(i * k, i * k + k));
-      row.set(this.#factor.subarray(i * count, i * count + found), k);
-      addLowerProduct(small, row, size);
-    }
-    for (let a = 0; a < size; a++) for (let b = 0; b < a; b++) small[b * size + a] = small[a * size + b];
+    this.#kernels.gramAdd(small, joint, count, size);
     diagonalise(small, size, this.#d, this.#e);
     this.rank = Math.min(this.#most, size);
     for (let c = 0; c < this.rank; c++) this.values[c] = Math.sqrt(Math.max(0, this.#d[c]));
@@ -130,29 +145,28 @@ export class BlockFold implements Fold {
 
   /** New basis = W₁ V + (W₂ L⁻¹) E, or, E not formed, (W₁ − W₂ L⁻¹ P) V + (W₂ L⁻¹) X. */
   #turnBasis(count: number, found: number, old: number, isFormed: boolean): void {
-    const [turn, small, p] = [this.#turn, this.#small, this.#p];
+    const [turn, small, share, kept] = [this.#turn, this.#small, this.#share, this.rank];
     const size = old + found;
     const width = this.#most + count;
-    turn.fill(0, 0, this.rank * width);
-    for (let r = 0; r < this.rank; r++) {
-      const at = r * width;
-      for (let c = 0; c < old; c++) turn[at + c] = small[r * size + c];
+    share.fill(0, 0, kept * count);
+    for (let r = 0; r < kept; r++) {
       solveRow(this.#factor, this.#pivots, count, found, small, r * size + old, this.#e);
-      for (let c = 0; c < found; c++) {
-        const row = this.#pivots[c];
-        const share = this.#e[c];
-        turn[at + this.#most + row] = share;
-        if (isFormed) continue;
-        for (let j = 0; j < old; j++) turn[at + j] -= share * p[row * old + j];
-      }
+      for (let c = 0; c < found; c++) share[r * count + this.#pivots[c]] = this.#e[c];
     }
-    this.#rows.combine(turn, width, this.rank);
+    if (isFormed) this.#taken.fill(0, 0, kept * old);
+    else this.#kernels.multiply(this.#taken, share, this.#p, kept, count, old);
+    turn.fill(0, 0, kept * width);
+    for (let r = 0; r < kept; r++) {
+      for (let c = 0; c < old; c++) turn[r * width + c] = small[r * size + c] - this.#taken[r * old + c];
+      turn.set(share.subarray(r * count, (r + 1) * count), r * width + this.#most);
+    }
+    this.#rows.combine(turn, width, kept);
   }
 
   #keepOrthonormal(): void {
     this.orthogonality = measureOrthogonality(this.#rows, this.rank, this.#small);
     if (this.orthogonality <= ORTHOGONALITY_BOUND) return;
-    orthonormaliseRows(this.#rows, this.rank);
+    orthonormaliseRows(this.#rows, this.rank, this.#small);
     this.corrections++;
     this.orthogonality = measureOrthogonality(this.#rows, this.rank, this.#small);
   }
@@ -210,12 +224,5 @@ function solveRow(
     let sum = x[at + c];
     for (let j = c + 1; j < found; j++) sum -= y[j] * l[pivots[j] * count + c];
     y[c] = sum / l[pivots[c] * count + c];
-  }
-}
-
-function addLowerProduct(to: Float64Array, row: Float64Array, size: number): void {
-  for (let a = 0; a < size; a++) {
-    const f = row[a];
-    for (let b = 0; b <= a; b++) to[a * size + b] += f * row[b];
   }
 }

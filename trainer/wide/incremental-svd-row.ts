@@ -3,6 +3,7 @@
  * since, C a small matrix that alone is turned at every row; long rows are read twice for a row and turned only when the
  * spare places are full. The small problem is a diagonal one and an outer product, solved as such.
  */
+import { createKernels, type Kernels } from '../kernels/kernels.ts';
 import type { Fold } from './incremental-svd.ts';
 import { RankOneEigen } from './rank-one-eigen.ts';
 import { measureOrthogonality, ORTHOGONALITY_BOUND, orthonormaliseRows } from './tall-orthonormal.ts';
@@ -18,17 +19,18 @@ const MEASURE_EVERY = 8;
 export class RowFold implements Fold {
   /** Places for what is left of rows; more make long rows turn more seldom and be read longer. */
   static readonly SPARE = 32;
+  readonly #kernels: Kernels;
   readonly #most: number;
   readonly #capacity: number;
   readonly #rows: TallRows;
-  /** (rank × width) C, with row stride #capacity; and its next. */
-  #mix: Float64Array;
-  #nextMix: Float64Array;
+  /** (rank × width) C; the same once more with a row and a column for what is new; and W. */
+  readonly #mix: Float64Array;
+  readonly #wide: Float64Array;
+  readonly #w: Float64Array;
   readonly #along: Float64Array;
   readonly #p: Float64Array;
   readonly #z: Float64Array;
   readonly #d: Float64Array;
-  readonly #one = new Float64Array(1);
   readonly #eigen: RankOneEigen;
   readonly #products: Float64Array;
   readonly values: Float64Array;
@@ -43,16 +45,25 @@ export class RowFold implements Fold {
   constructor(columns: number, most: number) {
     this.#most = most;
     this.#capacity = most + RowFold.SPARE;
-    this.#rows = new TallRows(this.#capacity, most, columns);
-    this.#mix = new Float64Array(most * this.#capacity);
-    this.#nextMix = new Float64Array(most * this.#capacity);
+    const kernels = createKernels(RowFold.bytes(columns, most));
+    this.#kernels = kernels;
+    this.#rows = new TallRows(kernels, this.#capacity, most, columns);
+    this.#mix = kernels.alloc64(most * this.#capacity);
+    this.#wide = kernels.alloc64((most + 1) * this.#capacity);
+    this.#w = kernels.alloc64((most + 1) * (most + 1));
+    this.#products = kernels.alloc64(most * most);
     this.#along = new Float64Array(this.#capacity);
     this.#p = new Float64Array(most);
     this.#z = new Float64Array(most + 1);
     this.#d = new Float64Array(most + 1);
     this.#eigen = new RankOneEigen(most + 1);
-    this.#products = new Float64Array(most * most);
     this.values = new Float64Array(most);
+  }
+
+  /** Bytes that such a fold takes in the kernels' memory. */
+  static bytes(columns: number, most: number): number {
+    const capacity = most + RowFold.SPARE;
+    return TallRows.bytes(capacity, most, columns) + 8 * ((2 * most + 1) * capacity + 2 * (most + 1) ** 2) + 1024;
   }
 
   rowAt(_: number): Float64Array {
@@ -71,7 +82,7 @@ export class RowFold implements Fold {
   }
 
   fold(_: number): void {
-    const square = this.#squareLeft();
+    const square = this.#rows.square(this.#width);
     this.#p.fill(0);
     let left = this.#project(square);
     if (this.rank > 0 && left < SMALL_LEFT * square) left = this.#project(square);
@@ -88,67 +99,52 @@ export class RowFold implements Fold {
     } else this.discarded += left;
     this.#eigen.solve(this.#d, this.#z, size);
     this.#turnMix(size, isNew ? 1 / Math.sqrt(left) : 0);
-    if (isNew) this.#width++;
     if (this.#width === this.#capacity) this.#turnLongRows();
   }
 
   /** Takes the row's part along the basis away from it, adding that part to p; gives the square of what is left. */
   #project(square: number): number {
     if (this.rank === 0) return square;
-    const [width, stride, along, mix] = [this.#width, this.#capacity, this.#along, this.#mix];
-    this.#rows.products(width, 1, 0, width, along);
+    const [width, along, mix] = [this.#width, this.#along, this.#mix];
+    this.#rows.dots(width, width, along);
     const part = this.#z;
     for (let k = 0; k < this.rank; k++) {
       let sum = 0;
-      for (let j = 0; j < width; j++) sum += mix[k * stride + j] * along[j];
+      for (let j = 0; j < width; j++) sum += mix[k * width + j] * along[j];
       part[k] = sum;
       this.#p[k] += sum;
     }
     along.fill(0, 0, width);
     for (let k = 0; k < this.rank; k++) {
-      for (let j = 0; j < width; j++) along[j] += part[k] * mix[k * stride + j];
+      for (let j = 0; j < width; j++) along[j] += part[k] * mix[k * width + j];
     }
-    this.#rows.takeAway(along, width, width, 1);
-    return this.#squareLeft();
+    this.#rows.takeFrom(width, along, width);
+    return this.#rows.square(width);
   }
 
-  #squareLeft(): number {
-    this.#rows.products(this.#width, 1, this.#width, 1, this.#one);
-    return this.#one[0];
-  }
-
-  /** C ← W [C 0; 0 1/ρ], its last row let go where there is one too many. */
+  /** C ← W [C 0; 0 1/ρ], its last row let go where there is one too many; 1/ρ of 0: nothing new. */
   #turnMix(size: number, reciprocal: number): void {
-    const [stride, width, old] = [this.#capacity, this.#width, this.rank];
+    const [wide, old] = [this.#wide, this.rank];
     const { values, vectors } = this.#eigen;
     const kept = Math.min(size, this.#most);
-    const next = this.#nextMix;
-    for (let r = 0; r < kept; r++) {
-      const to = r * stride;
-      next.fill(0, to, to + width);
-      for (let k = 0; k < old; k++) {
-        const f = vectors[r * size + k];
-        const from = k * stride;
-        for (let j = 0; j < width; j++) next[to + j] += f * this.#mix[from + j];
-      }
-      next[to + width] = size > old ? vectors[r * size + old] * reciprocal : 0;
-      this.values[r] = Math.sqrt(Math.max(0, values[r]));
-    }
+    const width = this.#width + (size > old ? 1 : 0);
+    wide.fill(0, 0, size * width);
+    for (let k = 0; k < old; k++) wide.set(this.#mix.subarray(k * this.#width, (k + 1) * this.#width), k * width);
+    if (size > old) wide[size * width - 1] = reciprocal;
+    this.#w.set(vectors.subarray(0, kept * size));
+    this.#kernels.multiply(this.#mix, this.#w, wide, kept, size, width);
+    for (let r = 0; r < kept; r++) this.values[r] = Math.sqrt(Math.max(0, values[r]));
     for (let r = kept; r < size; r++) this.discarded += Math.max(0, values[r]);
     this.rank = kept;
-    this.#nextMix = this.#mix;
-    this.#mix = next;
+    this.#width = width;
   }
 
   /** The basis itself, Z ← C Z and C ← I. */
   #turnLongRows(): void {
-    const [stride, width] = [this.#capacity, this.#width];
     if (this.rank === 0) return;
-    const dense = new Float64Array(this.rank * width);
-    for (let k = 0; k < this.rank; k++) dense.set(this.#mix.subarray(k * stride, k * stride + width), k * width);
-    this.#rows.combine(dense, width, this.rank);
+    this.#rows.combine(this.#mix, this.#width, this.rank);
     this.#mix.fill(0);
-    for (let k = 0; k < this.rank; k++) this.#mix[k * stride + k] = 1;
+    for (let k = 0; k < this.rank; k++) this.#mix[k * this.rank + k] = 1;
     this.#width = this.rank;
     this.#turns++;
     if (this.#turns % MEASURE_EVERY === 0) this.#keepOrthonormal();
@@ -157,7 +153,7 @@ export class RowFold implements Fold {
   #keepOrthonormal(): void {
     this.orthogonality = measureOrthogonality(this.#rows, this.rank, this.#products);
     if (this.orthogonality <= ORTHOGONALITY_BOUND) return;
-    orthonormaliseRows(this.#rows, this.rank);
+    orthonormaliseRows(this.#rows, this.rank, this.#products);
     this.corrections++;
     this.orthogonality = measureOrthogonality(this.#rows, this.rank, this.#products);
   }

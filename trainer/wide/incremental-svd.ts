@@ -10,7 +10,6 @@
 import { PANEL_BYTES } from '../kernels/products.ts';
 import { BlockFold } from './incremental-svd-block.ts';
 import { RowFold } from './incremental-svd-row.ts';
-import { TallRows } from './tall-rows.ts';
 
 /** What is to be decomposed, and how. */
 export interface SvdShape {
@@ -154,8 +153,9 @@ export class IncrementalSvd {
 
 /** Bytes that a decomposition of that shape takes. */
 export function svdBytes({ columns, rank, blockRows = DEFAULT_BLOCK }: SvdShape): number {
-  const spare = blockRows === 1 ? RowFold.SPARE : blockRows;
-  return TallRows.bytes(rank + spare, rank, columns) + PANEL_BYTES + 8 * 6 * (rank + spare) ** 2;
+  const kept = Math.min(rank, columns);
+  const own = blockRows === 1 ? RowFold.bytes(columns, kept) : BlockFold.bytes(columns, kept, blockRows);
+  return own + PANEL_BYTES + 8 * 4 * (kept + blockRows) ** 2;
 }
 
 function requireWhole(name: string, value: number): void {

@@ -95,15 +95,27 @@ function accumulate(z: Float64Array, n: number, d: Float64Array): void {
     const u = i * n;
     for (let j = 0; j < i; j++) {
       const at = j * n;
-      let g = 0;
-      for (let k = 0; k < i; k++) g += z[at + k] * reflections[u + k];
-      g /= h;
-      for (let k = 0; k < i; k++) z[at + k] -= g * reflections[u + k];
+      // Sums of their own, since each addition would wait for the last.
+      let g0 = 0;
+      let g1 = 0;
+      let g2 = 0;
+      let g3 = 0;
+      let k = 0;
+      for (; k + 3 < i; k += 4) {
+        g0 += z[at + k] * reflections[u + k];
+        g1 += z[at + k + 1] * reflections[u + k + 1];
+        g2 += z[at + k + 2] * reflections[u + k + 2];
+        g3 += z[at + k + 3] * reflections[u + k + 3];
+      }
+      for (; k < i; k++) g0 += z[at + k] * reflections[u + k];
+      const g = (g0 + g1 + (g2 + g3)) / h;
+      for (k = 0; k < i; k++) z[at + k] -= g * reflections[u + k];
     }
   }
 }
 
 function implicitQl(z: Float64Array, n: number, d: Float64Array, e: Float64Array): void {
+  const turns = new Float64Array(2 * n);
   for (let i = 1; i < n; i++) e[i - 1] = e[i];
   e[n - 1] = 0;
   for (let l = 0; l < n; l++) {
@@ -115,13 +127,13 @@ function implicitQl(z: Float64Array, n: number, d: Float64Array, e: Float64Array
       }
       if (m === l) break;
       if (step === MOST_STEPS) throw new RangeError('an eigenvalue of a small matrix did not settle');
-      sweep(z, n, d, e, l, m);
+      turnRows(z, n, sweep(d, e, l, m, turns), m, turns);
     }
   }
 }
 
-/** One implicit QL step on rows l … m. */
-function sweep(z: Float64Array, n: number, d: Float64Array, e: Float64Array, l: number, m: number): void {
+/** One implicit QL step on rows l … m; turns hold cosine and sine of rows i and i + 1, and the last i is given back. */
+function sweep(d: Float64Array, e: Float64Array, l: number, m: number, turns: Float64Array): number {
   let g = (d[l + 1] - d[l]) / (2 * e[l]);
   let r = Math.sqrt(g * g + 1);
   g = d[m] - d[l] + e[l] / (g + (g >= 0 ? r : -r));
@@ -136,7 +148,7 @@ function sweep(z: Float64Array, n: number, d: Float64Array, e: Float64Array, l: 
     if (r === 0) {
       d[i + 1] -= p;
       e[m] = 0;
-      return;
+      return i + 1;
     }
     s = f / r;
     c = g / r;
@@ -145,20 +157,57 @@ function sweep(z: Float64Array, n: number, d: Float64Array, e: Float64Array, l: 
     p = s * r;
     d[i + 1] = g + p;
     g = c * r - b;
-    rotate(z, i * n, n, c, s);
+    turns[2 * i] = c;
+    turns[2 * i + 1] = s;
   }
   d[l] -= p;
   e[l] = g;
   e[m] = 0;
+  return l;
 }
 
-/** Rows i and i + 1 turned into each other. */
-function rotate(z: Float64Array, at: number, n: number, c: number, s: number): void {
-  for (let k = 0; k < n; k++) {
-    const low = z[at + k];
-    const high = z[at + n + k];
-    z[at + n + k] = s * low + c * high;
-    z[at + k] = c * low - s * high;
+/**
+ * Rows m … l turned into each other, pair by pair. Four columns at a time go through all turns, since what one turn leaves
+ * in its lower row the next one takes up: each number is read and written once.
+ */
+function turnRows(z: Float64Array, n: number, l: number, m: number, turns: Float64Array): void {
+  let k = 0;
+  for (; k + 3 < n; k += 4) {
+    let at = m * n + k;
+    let a = z[at];
+    let b = z[at + 1];
+    let c = z[at + 2];
+    let d = z[at + 3];
+    for (let i = m - 1; i >= l; i--, at -= n) {
+      const cos = turns[2 * i];
+      const sin = turns[2 * i + 1];
+      const p = z[at - n];
+      const q = z[at - n + 1];
+      const r = z[at - n + 2];
+      const s = z[at - n + 3];
+      z[at] = sin * p + cos * a;
+      z[at + 1] = sin * q + cos * b;
+      z[at + 2] = sin * r + cos * c;
+      z[at + 3] = sin * s + cos * d;
+      a = cos * p - sin * a;
+      b = cos * q - sin * b;
+      c = cos * r - sin * c;
+      d = cos * s - sin * d;
+    }
+    z[at] = a;
+    z[at + 1] = b;
+    z[at + 2] = c;
+    z[at + 3] = d;
+  }
+  for (; k < n; k++) {
+    let at = m * n + k;
+    let a = z[at];
+    for (let i = m - 1; i >= l; i--, at -= n) {
+      const p = z[at - n];
+      z[at] = turns[2 * i + 1] * p + turns[2 * i] * a;
+      a = turns[2 * i] * p - turns[2 * i + 1] * a;
+    }
+    z[at] = a;
   }
 }
 

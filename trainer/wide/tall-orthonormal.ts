@@ -8,7 +8,7 @@ export const ORTHOGONALITY_BOUND = 1e-10;
 /**
  * Largest entry of |V V' − I|.
  *
- * shapes  V the first k rows; scratch (k × k)
+ * shapes  V the first k rows; scratch (k × k), of the rows' memory
  * units   none
  * throws  nothing
  * source  definition
@@ -27,18 +27,18 @@ export function measureOrthogonality(rows: TallRows, k: number, scratch: Float64
  * Makes the first k rows orthonormal, the first ones changed least: V ← L⁻¹ V with V V' = L L'. Done twice, since one pass
  * leaves what its factor was off by.
  *
- * shapes  V the first k rows
+ * shapes  V the first k rows; scratch (k × k), of the rows' memory
  * units   none
  * throws  TrainError 'fit' if the rows have become dependent
  * source  Cholesky QR, twice: Yamamoto, Nakatsukasa, Yanagisawa & Fukaya, Electronic Transactions on Numerical Analysis 44
  *         (2015)
  * cost    4 k² columns multiplications
  */
-export function orthonormaliseRows(rows: TallRows, k: number): void {
-  const products = new Float64Array(k * k);
+export function orthonormaliseRows(rows: TallRows, k: number, scratch: Float64Array): void {
   for (let pass = 0; pass < 2; pass++) {
-    rows.products(0, k, 0, k, products);
-    rows.combine(inverseLower(cholesky(products, k), k), k, k);
+    rows.products(0, k, 0, k, scratch);
+    scratch.set(inverseLower(cholesky(scratch, k), k));
+    rows.combine(scratch, k, k);
   }
 }
 
