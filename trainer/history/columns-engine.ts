@@ -6,9 +6,9 @@
  * A streamed result that fails simply ends, so whoever streams must know how many rows there are, and ask again for the
  * rest to learn the reason.
  */
-import { mkdtempSync, rmSync } from 'node:fs';
+import { existsSync, mkdtempSync, rmSync } from 'node:fs';
 import { tmpdir } from 'node:os';
-import { join } from 'node:path';
+import { dirname, join, resolve } from 'node:path';
 import { setFlagsFromString } from 'node:v8';
 import { runInNewContext } from 'node:vm';
 import type { DuckDBConnection, DuckDBDataChunk, DuckDBInstance } from '@duckdb/node-api';
@@ -70,10 +70,13 @@ export class ColumnsEngine {
   /** Lets queries spill. */
   async allowSpill(connection: DuckDBConnection): Promise<void> {
     if (this.#spill !== null) return;
+    // The folder of the output may not be there yet: then the nearest one above it.
+    let folder = resolve(this.#spillIn);
+    while (!existsSync(folder) && dirname(folder) !== folder) folder = dirname(folder);
     try {
-      this.#spill = mkdtempSync(join(this.#spillIn, '.stillwell-sort-'));
+      this.#spill = mkdtempSync(join(folder, '.stillwell-sort-'));
     } catch (cause) {
-      throw unwritable(this.#spillIn, cause as Error);
+      throw unwritable(folder, cause as Error);
     }
     await connection.run(`SET temp_directory = ${quoted(this.#spill)}`);
   }

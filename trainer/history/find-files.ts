@@ -3,7 +3,7 @@
  * pattern (`*`, `**`, `?`, `[a-z]`, `{a,b}`) for what it matches. In folders that are parted by KEY=VALUE, site=NAME keeps
  * other sites' files out; every other key is passed over, since the files say it all.
  */
-import { readdirSync, statSync } from 'node:fs';
+import { existsSync, readdirSync, statSync } from 'node:fs';
 import { join, sep } from 'node:path';
 import { TrainError } from '../errors.ts';
 
@@ -65,8 +65,12 @@ function isOurs(path: string, siteName: string | null): boolean {
 
 function matched(pattern: string, siteName: string | null): string[] {
   const parts = pattern.split(/[/\\]/);
-  const fixed = parts.findIndex((part) => PATTERN.test(part));
-  const from = parts.slice(0, fixed).join(sep) || (pattern.startsWith('/') ? sep : '');
+  const upTo = (count: number): string => parts.slice(0, count).join(sep) || (pattern.startsWith('/') ? sep : '');
+  // Letters of a pattern in the name of a folder that is there are that name's.
+  let fixed = 0;
+  while (fixed < parts.length && (!PATTERN.test(parts[fixed] as string) || existsSync(upTo(fixed + 1)))) fixed++;
+  if (fixed === parts.length) return [pattern];
+  const from = upTo(fixed);
   const found = walk(from, parts.slice(fixed)).filter((path) => isOurs(path.slice(from.length), siteName));
   if (found.length > 0) return found;
   throw new TrainError('file', `${pattern}: expected history files that match this pattern, got none; check the path`);

@@ -92,7 +92,9 @@ export class StreamMerge {
       this.#openNext();
       return true;
     }
-    const others = this.active.filter((one) => one !== next).map(headOf);
+    // The signals of a long file are lists of their own, which must not run away from each other either.
+    const isParted = next.stream.gathering.blocks.length > 1;
+    const others = this.active.filter((one) => one !== next || isParted).map(headOf);
     this.#move(next, Math.min(coming, ...others) + this.#slackMs, recent);
     return true;
   }

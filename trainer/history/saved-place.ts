@@ -11,7 +11,7 @@
  * | 32 | SHA-256 of all before it |
  */
 import { createHash } from 'node:crypto';
-import { closeSync, openSync, readFileSync, readSync, rmSync, statSync } from 'node:fs';
+import { closeSync, existsSync, openSync, readFileSync, readSync, rmSync, statSync } from 'node:fs';
 import { writeOutput } from '../output-file.ts';
 
 const MAGIC = Buffer.from('SWPLACE\u0001', 'latin1');
@@ -81,7 +81,7 @@ export function savePlace(path: string, belongs: Belongs, { data, lists }: Place
  * say  told in a sentence why a place that is there is of no use
  */
 export function readPlace(path: string, belongs: Belongs, say: (sentence: string) => void): Place | null {
-  if (!statSync(path, { throwIfNoEntry: false })?.isFile()) return null;
+  if (!existsSync(path)) return null;
   const anew = (why: string): null => {
     say(`${path}: ${why}, so reading starts anew.`);
     return null;
