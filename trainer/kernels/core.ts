@@ -33,6 +33,8 @@ export interface ProductLoops {
     rowStride: number,
     columnStride: number,
     a: Pointer,
+    aStrip: number,
+    aStep: number,
     b: Pointer,
     rows: number,
     columns: number,

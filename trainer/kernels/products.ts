@@ -10,8 +10,10 @@ const ROWS = 64;
 const COLUMNS = 512;
 /** Bytes of scratch a product needs. */
 export const PANEL_BYTES = 8 * STEPS * (ROWS + COLUMNS);
-/** Fewer columns than that are narrow. */
-const NARROW = 8;
+/** Steps from which on sums may be stored down a column instead of along a row. */
+const LONG = 64;
+/** Longest step, in elements, at which a left factor is read unpacked. */
+const DIRECT = 128;
 /** A skew so large that no tile lies above the diagonal. */
 const WHOLE = 1 << 30;
 
@@ -47,10 +49,25 @@ export function addProduct(
   const isLower = options.isLower === true;
   if (n === 1 && addThin(core, c, stride, a, b, m, steps, options.isTaken)) return;
   if (m === 1 && addThin(core, c, 1, b, a, n, steps, options.isTaken)) return;
-  // A narrow right factor would leave most of its strips of eight empty: then the other side takes them. The sums are the same.
-  if (n < m && n < NARROW && !isLower)
+  if (!isLower && isTurned(a, b, m, n, steps))
     addPanels(core, scratch, c, 1, stride, b, a, n, m, steps, isLower, options.isTaken);
   else addPanels(core, scratch, c, stride, 1, a, b, m, n, steps, isLower, options.isTaken);
+}
+
+/**
+ * True where the factors had better change sides, the sums being the same: so that fewer strips of eight are left half
+ * empty, or so that the one that can be read unpacked is on the left.
+ */
+function isTurned(a: Factor, b: Factor, m: number, n: number, steps: number): boolean {
+  if (steps < LONG) return n < 8 && n < m;
+  const area = (left: number, right: number): number => (left + (left % 2)) * 8 * Math.ceil(right / 8);
+  const [straight, turned] = [area(m, n), area(n, m)];
+  return straight === turned ? !isDirect(a, m) && isDirect(b, n) : turned < straight;
+}
+
+/** Pairs that lie side by side already are read where they are, unless far steps would crowd one set of the cache. */
+function isDirect(a: Factor, m: number): boolean {
+  return !a.isSingle && a.rowStride === 1 && m % 2 === 0 && a.stepStride <= DIRECT;
 }
 
 /** C += A x without packing; false where the parts do not lie side by side. */
@@ -93,6 +110,7 @@ function addPanels(
   isTaken = false,
 ): void {
   const left = scratch + 8 * STEPS * COLUMNS;
+  const inPlace = isDirect(a, m);
   for (let j = 0; j < n; j += COLUMNS) {
     const columns = Math.min(COLUMNS, n - j);
     for (let t = 0; t < steps; t += STEPS) {
@@ -101,10 +119,25 @@ function addPanels(
       for (let i = 0; i < m; i += ROWS) {
         const rows = Math.min(ROWS, m - i);
         if (isLower && i + rows <= j) continue;
-        pack(core, left, a, i, t, rows, depth, 2);
+        if (!inPlace) pack(core, left, a, i, t, rows, depth, 2);
+        const from = inPlace ? a.at + 8 * (i + t * a.stepStride) : left;
+        const [aStrip, aStep] = inPlace ? [2, a.stepStride] : [2 * depth, 2];
         const to = c + 8 * (i * rowStride + j * columnStride);
         const skew = isLower ? i - j : WHOLE;
-        core.panels(to, rowStride, columnStride, left, scratch, rows, columns, depth, skew, isTaken ? 1 : 0);
+        core.panels(
+          to,
+          rowStride,
+          columnStride,
+          from,
+          aStrip,
+          aStep,
+          scratch,
+          rows,
+          columns,
+          depth,
+          skew,
+          isTaken ? 1 : 0,
+        );
       }
     }
   }

@@ -18,16 +18,16 @@ export function scalarProducts(buffer: ArrayBuffer): ProductLoops {
       pack(heap, to / 8, heap, from / 8, rowStride, stepStride, rows, steps, width),
     pack32: (to, from, rowStride, stepStride, rows, steps, width) =>
       pack(heap, to / 8, heap32, from / 4, rowStride, stepStride, rows, steps, width),
-    panels(c, rowStride, columnStride, a, b, rows, columns, steps, skew, isTaken) {
+    panels(c, rowStride, columnStride, a, aStrip, aStep, b, rows, columns, steps, skew, isTaken) {
       const sign = isTaken ? -1 : 1;
       for (let j = 0; j < columns; j += 8) {
         for (let i = 0; i < rows; i += 2) {
           if (i + skew + 1 < j) continue;
           const inside = Math.min(8, columns - j);
           const to = c / 8 + i * rowStride + j * columnStride;
-          const [left, right] = [a / 8 + i * steps, b / 8 + j * steps];
-          addRow(heap, to, columnStride, left, right, inside, steps, sign);
-          if (i + 1 < rows) addRow(heap, to + rowStride, columnStride, left + 1, right, inside, steps, sign);
+          const [left, right] = [a / 8 + (i / 2) * aStrip, b / 8 + j * steps];
+          addRow(heap, to, columnStride, left, aStep, right, inside, steps, sign);
+          if (i + 1 < rows) addRow(heap, to + rowStride, columnStride, left + 1, aStep, right, inside, steps, sign);
         }
       }
     },
@@ -59,6 +59,7 @@ function addRow(
   to: number,
   columnStride: number,
   a: number,
+  aStep: number,
   b: number,
   columns: number,
   steps: number,
@@ -67,7 +68,7 @@ function addRow(
   for (let j = 0; j < columns; j += 2) {
     let low = 0;
     let high = 0;
-    for (let t = 0, left = a, right = b + j; t < steps; t++, left += 2, right += 8) {
+    for (let t = 0, left = a, right = b + j; t < steps; t++, left += aStep, right += 8) {
       low += heap[left] * heap[right];
       high += heap[left] * heap[right + 1];
     }

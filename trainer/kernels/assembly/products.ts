@@ -33,9 +33,9 @@ export function pack64(
       const inside = whole ? width : rows - i;
       for (let t: usize = 0; t < <usize>steps; t++) {
         const out = to + t * wide;
-        for (let r = 0; r < width; r++) {
-          f64.store(out + (<usize>r << 3), r < inside ? f64.load(from + row * r + step * t) : 0);
-        }
+        let at = from + step * t;
+        for (let r = 0; r < inside; r++, at += row) f64.store(out + (<usize>r << 3), f64.load(at));
+        for (let r = inside; r < width; r++) f64.store(out + (<usize>r << 3), 0);
       }
     }
   }
@@ -61,9 +61,11 @@ export function pack32(
       const out = to + t * wide;
       const at = from + step * t;
       if (whole && rowStride == 1) {
-        for (let r: usize = 0; r < <usize>width; r += 2) {
-          v128.store(out + (r << 3), f64x2.promote_low_f32x4(v128.load64_zero(at + (r << 2))));
-        }
+        v128.store(out, f64x2.promote_low_f32x4(v128.load64_zero(at)));
+        if (width == 2) continue;
+        v128.store(out, f64x2.promote_low_f32x4(v128.load64_zero(at, 8)), 16);
+        v128.store(out, f64x2.promote_low_f32x4(v128.load64_zero(at, 16)), 32);
+        v128.store(out, f64x2.promote_low_f32x4(v128.load64_zero(at, 24)), 48);
       } else {
         for (let r = 0; r < width; r++) {
           f64.store(out + (<usize>r << 3), r < inside ? <f64>f32.load(at + row * r) : 0);
@@ -101,8 +103,9 @@ function turnPairs(to: usize, from: usize, row: usize, steps: i32, wide: usize):
 }
 
 /**
- * C += A B, or C -= A B, from packed panels: a holds `rows` rows, b `columns` columns, of `steps` steps each; element (i, j)
- * of C lies at c + 8 (i rowStride + j columnStride). Tiles wholly above the diagonal i + skew = j are left out. Each element
+ * C += A B, or C -= A B: b is a packed panel of `columns` columns, a one of `rows` rows, or the matrix itself where pairs of
+ * rows lie side by side: element (i, t) of A lies at a + 8 (i / 2 aStrip + i % 2 + t aStep), (i, j) of C at
+ * c + 8 (i rowStride + j columnStride). Tiles wholly above the diagonal i + skew = j are left out. Each element
  * sums its products in order, then adds the sum once.
  */
 export function panels(
@@ -110,6 +113,8 @@ export function panels(
   rowStride: i32,
   columnStride: i32,
   a: usize,
+  aStrip: i32,
+  aStep: i32,
   b: usize,
   rows: i32,
   columns: i32,
@@ -117,14 +122,15 @@ export function panels(
   skew: i32,
   isTaken: i32,
 ): void {
-  const left = (<usize>steps) << 4;
+  const left = (<usize>aStrip) << 3;
+  const next = (<usize>aStep) << 3;
   const right = (<usize>steps) << 6;
   for (let j = 0; j < columns; j += 8, b += right) {
     let strip = a;
     for (let i = 0; i < rows; i += 2, strip += left) {
       if (i + skew + 1 < j) continue;
       const to = c + (<usize>(i * rowStride + j * columnStride) << 3);
-      tile(to, rowStride, columnStride, strip, b, rows - i, columns - j, steps, isTaken);
+      tile(to, rowStride, columnStride, strip, next, b, rows - i, columns - j, steps, isTaken);
     }
   }
 }
@@ -135,6 +141,7 @@ function tile(
   rowStride: i32,
   columnStride: i32,
   a: usize,
+  next: usize,
   b: usize,
   rows: i32,
   columns: i32,
@@ -149,7 +156,7 @@ function tile(
   let c11 = f64x2.splat(0);
   let c12 = f64x2.splat(0);
   let c13 = f64x2.splat(0);
-  for (let t = 0; t < steps; t++, a += 16, b += 64) {
+  for (let t = 0; t < steps; t++, a += next, b += 64) {
     const b0 = v128.load(b);
     const b1 = v128.load(b, 16);
     const b2 = v128.load(b, 32);
