@@ -1,11 +1,12 @@
 /** `stillwell fit`: from a history to a judged candidate. */
+import { join } from 'node:path';
 import { ADVISORY, type Site } from '@stillwell/protocol';
 import { Command } from 'commander';
 import { CANDIDATE_FILES, candidateFacts } from '../candidate-files.ts';
 import { TrainError } from '../errors.ts';
 import { type FitSiteJob, type FitSiteWatch, fitSite } from '../fit-site.ts';
 import { fitSummary } from '../fit-summary.ts';
-import { kindOption, reason, several, share, wholeNumber } from '../option-values.ts';
+import { halfLifeOption, halfLifeTicks, kindOption, reason, several, share, wholeNumber } from '../option-values.ts';
 import { writeOutputs } from '../output-file.ts';
 import { FIT_DEFAULTS, type FitOptions, type FitResult } from '../pipeline.ts';
 import { createProgress, type Progress } from '../progress.ts';
@@ -25,6 +26,7 @@ interface FitCommandOptions {
   readonly until?: string;
   readonly learnShare: number;
   readonly calibrateShare: number;
+  readonly halfLife?: number;
   readonly maxBytes: number;
   readonly useAll: boolean;
   readonly kind: FitOptions['kind'];
@@ -32,6 +34,9 @@ interface FitCommandOptions {
   readonly override?: string;
   readonly json: boolean;
 }
+
+/** Beside the candidate while a long history is read. */
+const RESUME_FILE = 'unfinished.swr';
 
 /** What of the options a site's job needs. */
 type JobOptions = Omit<FitCommandOptions, 'site' | 'history' | 'fleet' | 'threads' | 'fresh' | 'out' | 'json'>;
@@ -51,12 +56,13 @@ export function fitCommand(): Command {
       wholeNumber(1, 256),
     )
     .option('--fresh', 'with --fleet: fit sites again whose inputs and options are unchanged', false)
-    .requiredOption('--out <folder>', 'folder for candidate.swc, report.html, hindcast.json and survey.json')
+    .requiredOption('--out <folder>', `folder for ${CANDIDATE_FILES} and factors.swf`)
     .option('--time-zone <zone>', "zone of history times that carry none; the site's otherwise")
     .option('--from <time>', 'leave out readings before this time')
     .option('--until <time>', 'leave out readings from this time on')
     .option('--learn-share <share>', 'share of the history to learn from', share, FIT_DEFAULTS.learnShare)
     .option('--calibrate-share <share>', 'share after it for penalties and bounds', share, FIT_DEFAULTS.calibrateShare)
+    .addOption(halfLifeOption())
     .option('--max-bytes <bytes>', 'largest bundle document', wholeNumber(2048, 65_536), FIT_DEFAULTS.maxBytes)
     .option('--use-all', 'after judging, learn once more from the whole history', false)
     .addOption(kindOption())
@@ -88,9 +94,13 @@ async function run(options: FitCommandOptions): Promise<void> {
       throw new TrainError('options', `--${option}: expected --fleet beside it, got a single site; leave it out`);
   }
   const site = readSite(siteFile);
-  const { loaded, result, files } = await fitSite(jobOf(site, history, options.out, options), stepsShown());
+  const resumeFile = join(options.out, RESUME_FILE);
+  const say = (sentence: string): void => void process.stderr.write(`${sentence}\n`);
+  const job = { ...jobOf(site, history, options.out, options), resumeFile, say };
+  const { loaded, result, files, notes: more } = await fitSite(job, stepsShown());
   writeOutputs(files);
-  const notes = surveyNotes(loaded.survey);
+  loaded.done();
+  const notes = [...surveyNotes(loaded.survey), ...more];
   process.stdout.write(
     options.json
       ? `${JSON.stringify({ ...candidateFacts(options.out, result), survey_notes: notes }, null, 2)}\n`
@@ -127,6 +137,7 @@ function jobOf(site: Site, history: readonly string[], out: string, options: Job
     out,
     zone: options.timeZone ?? null,
     span: timeSpan(options, site.timeZone),
+    halfLifeTicks: halfLifeTicks(options.halfLife, site),
     options: {
       seed: options.seed,
       learnShare: options.learnShare,

@@ -28,6 +28,8 @@ export type { OlderFacts, OlderSink } from './older.ts';
 export interface LongOptions extends ReadOptions {
   /** File that keeps the place of an interrupted reading; none when absent, and interrupts are then not looked for. */
   readonly resumeFile?: string;
+  /** What else the sink goes by, such as a half-life: a place saved under another is of no use. */
+  readonly sinkKey?: string;
   /** Folder where sorting may spill; that of `resumeFile`, else the system's temporary one, when absent. */
   readonly spillIn?: string;
   /** Told in a sentence when reading goes on from an earlier run, or why it cannot. */
@@ -126,9 +128,10 @@ async function readLong(
 function belongsOf(
   files: readonly string[],
   site: Site,
-  { zone, requireZone, fromMs, untilMs, limits }: LongOptions,
+  { zone, requireZone, fromMs, untilMs, limits, sinkKey }: LongOptions,
 ): Belongs {
-  const asked = digestOfPlain([site, zone, requireZone ?? false, fromMs ?? null, untilMs ?? null, limits]);
+  const times = [zone, requireZone ?? false, fromMs ?? null, untilMs ?? null];
+  const asked = digestOfPlain([site, times, limits, sinkKey ?? null]);
   return { asked, files: files.map(identityOf) };
 }
 

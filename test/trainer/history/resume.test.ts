@@ -44,7 +44,7 @@ beforeAll(async () => {
   const csv = folder.write('all.csv', wideCsv(ALL));
   const types = "types = {'time': 'TIMESTAMPTZ', 'level': 'DOUBLE', 'flow': 'DOUBLE'}";
   const question = `SELECT * FROM read_csv('${csv}', ${types})`;
-  const many = `SELECT time + to_microseconds(range * 2000000) AS time, level, flow + range / 30.0 AS flow FROM (${question}), range(30) ORDER BY 1`;
+  const many = `SELECT time + to_microseconds(range * 4000000) AS time, level, flow + range / 15.0 AS flow FROM (${question}), range(15) ORDER BY 1`;
   const parquet = (text: string, name: string): Promise<string> => copy(connection, text, join(folder.path, name));
   paths = {
     'wide CSV, rows out of order': [folder.write('mixed.csv', wideCsv(MIXED))],
@@ -57,7 +57,7 @@ beforeAll(async () => {
       folder.write('b.csv', wideCsv(ALL.slice(250))),
       folder.write('a.ndjson', ndjson(ALL.slice(0, 300))),
     ],
-    'Parquet, 21,000 rows': [await parquet(many, 'many.parquet')],
+    'Parquet, 10,500 rows': [await parquet(many, 'many.parquet')],
     'Parquet to be sorted': [await parquet(`SELECT * FROM (${many}) ORDER BY hash(time)`, 'hash.parquet')],
   };
   connection.closeSync();
@@ -70,7 +70,7 @@ describe('interrupted and gone on with', () => {
     'CSV with quoted line breaks',
     'NDJSON',
     'two files, side by side',
-    'Parquet, 21,000 rows',
+    'Parquet, 10,500 rows',
     'Parquet to be sorted',
   ])('%s: the same bits wherever it was', async (way) => {
     const files = paths[way] as string[];
@@ -93,8 +93,9 @@ describe('interrupted and gone on with', () => {
   });
   it('interrupted again and again, at every block', async () => {
     const files = paths['two files, side by side'] as string[];
-    const options = { resumeFile: PLACE };
-    const expected = factsOf(await stream(files, SITE));
+    const limits = { ...LIMITS, blockBytes: 2048 };
+    const options = { resumeFile: PLACE, limits };
+    const expected = factsOf(await stream(files, SITE, { limits }));
     let stops = 0;
     for (;;) {
       const once = await stream(files, SITE, { ...options, interrupt: new AskAt(1) }).catch((cause: unknown) => cause);
@@ -105,16 +106,17 @@ describe('interrupted and gone on with', () => {
       }
       stops++;
     }
-    expect(stops).toBeGreaterThan(20);
+    expect(stops).toBeGreaterThan(10);
   });
   it('saves now and then without being asked, so that a killed run goes on too', async () => {
     const files = paths.NDJSON as string[];
-    const expected = factsOf(await stream(files, SITE));
-    const read = await stream(files, SITE, { resumeFile: PLACE, saveEveryMs: 0 });
+    const limits = { ...LIMITS, blockBytes: 8192 };
+    const expected = factsOf(await stream(files, SITE, { limits }));
+    const read = await stream(files, SITE, { resumeFile: PLACE, saveEveryMs: 0, limits });
     expect(factsOf(read)).toEqual(expected);
     // What took long to read stays until the result is written.
     expect(existsSync(PLACE)).toBe(true);
-    const again = await stream(files, SITE, { resumeFile: PLACE });
+    const again = await stream(files, SITE, { resumeFile: PLACE, limits });
     expect(factsOf(again)).toEqual(expected);
     again.loaded.done();
     expect(existsSync(PLACE)).toBe(false);
