@@ -1,5 +1,4 @@
 /** `stillwell fit --fleet`: many sites at once, each to a folder of its own. */
-import { statSync } from 'node:fs';
 import { availableParallelism } from 'node:os';
 import { join } from 'node:path';
 import { ADVISORY, type FleetEntryOptions, ProtocolError, type Site } from '@stillwell/protocol';
@@ -11,12 +10,12 @@ import { fleetText } from '../fleet/fleet-text.ts';
 import { type FleetSite, listSites } from '../fleet/list-sites.ts';
 import { type FleetResult, type FleetWork, runFleet } from '../fleet/run-fleet.ts';
 import { chooseThreads } from '../fleet/threads.ts';
+import { INTERRUPTED_CODE } from '../history/interrupt.ts';
 import { writeOutputs } from '../output-file.ts';
+import { fleetPeaks, storedBytes } from '../sizing/fleet-peaks.ts';
 
 /** Exit code where some sites failed and the others were fitted. */
 const SOME_FAILED = 3;
-/** Exit code after an interrupt: 128 and the signal's number, as shells have it. */
-const INTERRUPTED = 130;
 
 /** Work of a fit whose history is next to nothing, in bytes read. */
 const LEAST_WEIGHT = 500_000;
@@ -40,7 +39,9 @@ export async function fitFleet(options: FleetOptions): Promise<void> {
   const { sites, passedOver } = listSites(options.fleet, options.out);
   const works = sites.map((site, index) => workOf(site, index, options));
   const machine = { cores: availableParallelism(), freeBytes: process.availableMemory() };
-  const threads = chooseThreads(works.filter(({ task }) => task !== null).map(peakOf), machine, options.threads);
+  const jobs = works.flatMap(({ task }) => (task === null ? [] : [task.job]));
+  const peaks = await fleetPeaks(jobs, options.threads ?? machine.cores);
+  const threads = chooseThreads(peaks, machine, options.threads);
   for (const folder of passedOver)
     process.stderr.write(`stillwell: ${folder} holds no site.yaml and no history; passed over\n`);
   const interrupt = listenForInterrupt();
@@ -69,7 +70,7 @@ function workOf(site: FleetSite, index: number, options: FleetOptions): FleetWor
       label: site.label,
       task: { index, job, isFresh: options.fresh },
       problem: null,
-      weight: weightOf(site.history),
+      weight: LEAST_WEIGHT + storedBytes(site.history),
     };
   } catch (error) {
     if (error instanceof TrainError || error instanceof ProtocolError) return refused(error.message);
@@ -97,17 +98,7 @@ function sayStopped(results: readonly (FleetResult | null)[]): void {
   process.stderr.write(
     `stillwell: stopped; ${done} of ${results.length} sites are done and stay; the same command goes on with the rest\n`,
   );
-  process.exitCode = INTERRUPTED;
-}
-
-/** Work of a site beside others: its bytes, and what a fit takes however short its history. */
-function weightOf(history: readonly string[]): number {
-  return history.reduce((sum, path) => sum + (statSync(path, { throwIfNoEntry: false })?.size ?? 0), LEAST_WEIGHT);
-}
-
-/** Foreseen peak of a site's worker, in bytes. */
-function peakOf({ weight }: FleetWork): number {
-  return 150e6 + 12 * weight;
+  process.exitCode = INTERRUPTED_CODE;
 }
 
 function listenForInterrupt(): { readonly signal: AbortSignal; forget(): void } {

@@ -31,10 +31,11 @@ export interface FitRecord {
  *
  * throws  the system's error where a file cannot be read
  */
-export async function digestInputs({ site, history, zone, span, options }: FitSiteJob): Promise<string> {
+export async function digestInputs(job: FitSiteJob): Promise<string> {
   const files: [string, string][] = [];
-  for (const path of history) files.push([path, await digestFile(path)]);
-  const all = { format: FORMAT, trainer: TRAINER_VERSION, site, zone, span, options, files };
+  for (const path of job.history) files.push([path, await digestFile(path)]);
+  // Where the result goes says nothing of what it is.
+  const all = { ...job, out: null, format: FORMAT, trainer: TRAINER_VERSION, files };
   return createHash('sha256').update(JSON.stringify(all)).digest('hex');
 }
 

@@ -15,12 +15,14 @@ export const SECONDS: Work = {
 
 /** Bytes a unit at the peak of the resident memory. */
 export const BYTES: Work = {
-  program: 1.3e8,
-  recentReading: 100,
+  program: 1.459e8,
+  recentTick: 411.7,
+  featurePair: 224.9,
+  forecastCell: 134.8,
 };
 
 /** Bytes a unit of the bundle document. */
 export const BUNDLE: Work = {
-  document: 2000,
-  channel: 700,
+  document: 3703,
+  channel: 797.7,
 };

@@ -3,8 +3,11 @@
  * worst moment. What one step takes is measured and stands in constants.ts.
  */
 import type { Site } from '@stillwell/protocol';
+import { shapeOf } from '../factors/site-shape.ts';
 import { LONG_FROM, RECENT_TICKS } from '../history/long-limits.ts';
 import { designBank, featureCount } from '../identify/bank.ts';
+import { BUNDLE } from './constants.ts';
+import { factorsBytes } from './factors-size.ts';
 import type { Extent } from './history-extent.ts';
 
 const DAY_MS = 86_400_000;
@@ -26,10 +29,24 @@ export interface FitShape {
   readonly olderTicks: number;
   /** Features a channel of the widest bank that is tried. */
   readonly features: number;
+  /** The linear kind will hardly fit the bytes, so that the dense one is tried beside it. */
+  readonly isTight: boolean;
+  /** Bytes of the factors, and lags of all pairs of channels in them; 0 where the site goes without. */
+  readonly factorsBytes: number;
+  readonly laggedPairs: number;
 }
 
+/** What of a fit's options its cost hangs on. */
+export interface CostOptions {
+  readonly learnShare: number;
+  readonly maxBytes: number;
+}
+
+/** Share of the bytes from which on a bundle is tight. */
+const TIGHT_SHARE = 0.75;
+
 /** The shape of a site's fit. */
-export function fitShape(site: Site, extent: Extent, learnShare: number): FitShape {
+export function fitShape(site: Site, extent: Extent, { learnShare, maxBytes }: CostOptions): FitShape {
   const { tickMs, horizon, signals, inputs, calendar } = site;
   const isLong = extent.ticks > LONG_FROM;
   const recentTicks = isLong ? RECENT_TICKS : extent.ticks;
@@ -42,10 +59,13 @@ export function fitShape(site: Site, extent: Extent, learnShare: number): FitSha
     learnTicks: Math.round(learnShare * recentTicks),
     channelCount: signals.length + inputs.length,
   });
+  const channels = { signals: signals.length, inputs: inputs.length, horizon };
+  const factors = factorsBytes(site, extent.ticks);
   return {
-    signals: signals.length,
-    inputs: inputs.length,
-    horizon,
+    ...channels,
+    factorsBytes: factors ?? 0,
+    laggedPairs: factors === null ? 0 : (signals.length + inputs.length) ** 2 * shapeOf(site, null).reach,
+    isTight: priced(bundleWork(channels), BUNDLE) > TIGHT_SHARE * maxBytes,
     textBytes: extent.textBytes,
     readings: extent.readings,
     recentTicks,
@@ -57,21 +77,33 @@ export function fitShape(site: Site, extent: Extent, learnShare: number): FitSha
 /** Steps of a fit by what they do, and the numbers held at its peak; each in units of its own. */
 export type Work = Readonly<Record<string, number>>;
 
+/** Origins at which a replay is scored, at most (judge/hindcast.ts). */
+const MOST_SCORED = 6000;
+/** Share of the recent ticks that each replay goes over. */
+const REPLAYED_SHARE = 0.2;
+
 /** How often each step is done. Names are those of SECONDS in constants.ts. */
 export function timeWork(shape: FitShape): Work {
-  const { signals, inputs, horizon, textBytes, readings, recentTicks, olderTicks, features } = shape;
+  const { signals, inputs, horizon, textBytes, readings, recentTicks, olderTicks, features, isTight } = shape;
   const channels = signals + inputs;
   const all = channels * features;
+  const scored = Math.min(MOST_SCORED, REPLAYED_SHARE * recentTicks);
   return {
     start: 1,
     textByte: textBytes,
-    reading: textBytes > 0 ? 0 : readings,
+    columnReading: textBytes > 0 ? 0 : readings,
     recentReading: recentTicks * channels,
-    recentFeature: recentTicks * all,
-    featureCubed: all ** 3,
+    recentPair: recentTicks * channels ** 2,
     signalSolve: signals * all ** 2,
-    forecastCell: recentTicks * signals * horizon,
+    featureCubed: all ** 3,
+    forecastCell: scored * signals * horizon,
+    tightSolve: isTight ? all ** 3 : 0,
+    tightPair: isTight ? recentTicks * channels ** 2 : 0,
+    factorsByte: shape.factorsBytes,
+    laggedPair: shape.laggedPairs,
     olderPair: olderTicks * channels ** 2,
+    olderReading: olderTicks * channels,
+    streaming: olderTicks > 0 ? 1 : 0,
   };
 }
 
@@ -85,13 +117,15 @@ export function memoryWork(shape: FitShape): Work {
     recentTick: recentTicks,
     featurePair: (channels * features) ** 2,
     forecastCell: signals * horizon * channels * features,
+    factorsByte: shape.factorsBytes,
+    laggedPair: shape.laggedPairs,
     streaming: olderTicks > 0 ? 1 : 0,
-    streamedChannel: olderTicks > 0 ? channels : 0,
+    streamedByte: olderTicks > 0 ? shape.factorsBytes : 0,
   };
 }
 
 /** What a bundle is made of. Names are those of BUNDLE in constants.ts. */
-export function bundleWork(shape: FitShape): Work {
+export function bundleWork(shape: Pick<FitShape, 'signals' | 'inputs' | 'horizon'>): Work {
   const { signals, inputs, horizon } = shape;
   return { document: 1, channel: signals + inputs, bound: signals * horizon, map: signals * (signals + inputs) };
 }

@@ -1,8 +1,7 @@
 /** What a fit will take: memory, time, bundle, factors, and what other ways of learning the same would have needed. */
 import type { Site } from '@stillwell/protocol';
 import { BUNDLE, BYTES, PROBE_SECONDS, SECONDS } from './constants.ts';
-import { factorsBytes } from './factors-size.ts';
-import { bundleWork, type FitShape, fitShape, memoryWork, priced, timeWork } from './fit-work.ts';
+import { bundleWork, type CostOptions, type FitShape, fitShape, memoryWork, priced, timeWork } from './fit-work.ts';
 import type { Extent } from './history-extent.ts';
 import { covarianceOf, gramOf, type Matrix } from './matrix-size.ts';
 
@@ -26,16 +25,14 @@ export interface FitPrediction {
 }
 
 /** Options of the fit that change its cost. */
-export interface PredictOptions {
-  readonly learnShare: number;
-  readonly maxBytes: number;
+export interface PredictOptions extends CostOptions {
   /** Seconds of the probe on this machine. */
   readonly probe: number;
 }
 
 /** Foresees. */
 export function predictFit(site: Site, extent: Extent, options: PredictOptions): FitPrediction {
-  const shape = fitShape(site, extent, options.learnShare);
+  const shape = fitShape(site, extent, options);
   const features = shape.features * (shape.signals + shape.inputs);
   return {
     shape,
@@ -44,7 +41,7 @@ export function predictFit(site: Site, extent: Extent, options: PredictOptions):
     seconds: priced(timeWork(shape), SECONDS) * (options.probe / PROBE_SECONDS),
     bundleBytes: Math.min(options.maxBytes, Math.round(priced(bundleWork(shape), BUNDLE))),
     maxBundleBytes: options.maxBytes,
-    factorsBytes: factorsBytes(site, extent.ticks),
+    factorsBytes: shape.factorsBytes === 0 ? null : shape.factorsBytes,
     covariance: covarianceOf(features),
     gram: gramOf(extent.ticks),
   };
