@@ -3,10 +3,12 @@
  * longer groups run when they are asked for by name.
  */
 import { type BenchOptions, isWanted, type Row } from './harness.ts';
+import { kernelRows } from './kernels.ts';
 import { sizeRows } from './size-rows.ts';
 import { growthRows } from './training-growth.ts';
 import { historyRows } from './training-history.ts';
 import { refitRows } from './training-refit.ts';
+import { wideSvdRows } from './wide-svd-rows.ts';
 
 interface Group {
   /** The rows' names begin with it. */
@@ -21,6 +23,8 @@ const GROUPS: readonly Group[] = [
   { name: 'growth', rows: growthRows },
   { name: 'refit', rows: refitRows },
   { name: 'size', rows: sizeRows },
+  { name: 'kernels', rows: kernelRows },
+  { name: 'incremental SVD', rows: wideSvdRows },
 ];
 
 /** Rows of the suite. */

@@ -11,8 +11,8 @@ import { type PredictiveState, predictiveState } from './predictive-state.ts';
 import type { ProjectedFrames } from './projected-frames.ts';
 
 /** Shares of the recording: learned from, then order chosen by; the rest is held out. */
-export const LEARN_SHARE = 0.6;
-export const CHOOSE_SHARE = 0.2;
+const LEARN_SHARE = 0.6;
+const CHOOSE_SHARE = 0.2;
 /** Windows that each part must hold at least. */
 const LEAST_WINDOWS = 50;
 /** Windows looked at for the width, mean and scale of random features, and for the choice of order. */
