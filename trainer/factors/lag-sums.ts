@@ -7,6 +7,7 @@
  * for every lag up to the history's length, since what wraps around lands beyond it (Oppenheim & Schafer, Discrete-Time
  * Signal Processing, section 8.7).
  */
+import { MAX_HORIZON } from '@stillwell/protocol';
 import { createKernels, type Kernels } from '../kernels/kernels.ts';
 import { type LagGrid, sharesOf } from './lag-grid.ts';
 
@@ -26,7 +27,7 @@ const TILE = 512;
 const ROWS = 256;
 
 /**
- * Length of the longest transform for a reach: a quarter of it at least is new ticks.
+ * Length of the longest transform for a reach: a quarter of it at least is new ticks, and the shortest run that counts fits.
  *
  * shapes  none
  * units   ticks
@@ -36,7 +37,7 @@ const ROWS = 256;
  */
 export function longestTransform(reach: number): number {
   let size = SHORTEST;
-  while (3 * size < 4 * reach) size *= 2;
+  while (3 * size < 4 * reach || size < reach + MAX_HORIZON + 2) size *= 2;
   return size;
 }
 
@@ -74,8 +75,7 @@ export class LagSums {
     const kernels = this.#kernels;
     const block = later[0].length;
     const window = earlier[0].length;
-    // Every lag there is must stay clear of the negative ones that wrap around.
-    const { size, pairs } = this.#spectraOf(Math.min(window - 1, this.#reach) + block);
+    const { size, pairs } = this.#spectraOf(window);
     const half = size / 2 + 1;
     const mark = kernels.mark();
     const x = kernels.alloc64(size);
@@ -137,7 +137,7 @@ export class LagSums {
         pair.set(x);
       }
       kernels.release(mark);
-      this.spread(pairs, Math.min(this.#reach + 1, size), into);
+      this.spread(pairs, size === longestTransform(this.#reach) ? this.#reach + 1 : size / 2, into);
       for (const pair of pairs) pair.fill(0);
     }
   }
@@ -181,9 +181,13 @@ export class LagSums {
     }
   }
 
-  #spectraOf(least: number): Spectra {
+  /**
+   * The longest transform holds lags up to the reach, and blocks of the rest of its length; shorter ones windows of up to half
+   * of theirs. Beyond these lie the negative lags that wrap around.
+   */
+  #spectraOf(window: number): Spectra {
     let size = longestTransform(this.#reach);
-    while (size / SIZE_STEP >= Math.max(least, SHORTEST)) size /= SIZE_STEP;
+    while (size / SIZE_STEP >= Math.max(2 * window, SHORTEST)) size /= SIZE_STEP;
     const found = this.#spectra.find((spectra) => spectra.size === size);
     if (found !== undefined) return found;
     const pairs = Array.from({ length: this.#channels * this.#channels }, () => this.#kernels.alloc64(size + 2));

@@ -50,7 +50,7 @@ export class RunBook {
     const { channels, grid, reach } = shape;
     this.#shape = shape;
     const size = longestTransform(reach);
-    this.#blockTicks = Math.max(size - reach, shape.longestHorizon + 2);
+    this.#blockTicks = size - reach;
     this.#lags = new LagSums(channels, grid, reach);
     this.#sums = emptySums(channels, grid.lags.length, shape.longestHorizon, from?.sums ?? null);
     this.#ends = [...(from?.ends ?? [])];

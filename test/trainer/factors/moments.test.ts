@@ -1,95 +1,100 @@
 /** Moments from factors against the same sums over the readings. */
-import type { Round } from '@stillwell/runtime/filter';
 import { describe, expect, it } from 'vitest';
-import type { FactorsShape } from '../../../trainer/factors/factors.ts';
-import { FactorsGatherer } from '../../../trainer/factors/gather.ts';
+import type { Factors } from '../../../trainer/factors/factors.ts';
 import { momentsFromFactors } from '../../../trainer/factors/moments.ts';
-import type { Series } from '../../../trainer/history/series.ts';
 import { type Bank, designBank } from '../../../trainer/identify/bank.ts';
-import { gatherMoments, type Moments } from '../../../trainer/identify/moments.ts';
-import type { Scaling } from '../../../trainer/identify/scaling.ts';
-import { recurrence } from '../../support/sample-bundle.ts';
-
-const horizon = 6;
-const signalCount = 2;
-const next = recurrence(11);
-const ticks = 3000;
-const values = Array.from({ length: 3 }, (_, c) => {
-  let level = 0;
-  return Float64Array.from({ length: ticks }, (_, t) => {
-    level = 0.9 * level + next() / 2 ** 31 - 1;
-    return 40 + 10 * c + (1 + c) * (level + Math.sin((2 * Math.PI * t) / 12 + c));
-  });
-});
-const scalings: Scaling[] = values.map((_, c) => ({
-  mean: 41 + 10 * c,
-  scale: 2 + c,
-  clipLow: -1e9,
-  clipHigh: 1e9,
-  isConstant: false,
-}));
-const shape: FactorsShape = {
-  site: 'mill-3',
-  tickMs: 3_600_000,
-  names: ['a', 'b', 'c'],
-  units: ['1', '1', '1'],
+import { addInto } from '../../../trainer/identify/moment-sets.ts';
+import { eachMoments, type Moments } from '../../../trainer/identify/moments.ts';
+import {
+  direct,
+  expectAlike,
+  gathered,
+  horizon,
+  plantValues,
+  scalings,
+  shape,
   signalCount,
-  schema: '00',
-  halfLifeTicks: null,
-  reach: 4000,
-  longestHorizon: 12,
-  longestRound: 24,
-  longGapTicks: 6,
-};
-const bank: Bank = designBank({ periodTicks: 12, otherPeriods: [], horizon, learnTicks: 3000, channelCount: 3 });
+  standardised,
+  wholeBank,
+} from '../../support/factors-history.ts';
 
-function seriesOf(from: number, to: number): Series {
-  return {
-    tickMs: shape.tickMs,
-    firstTick: from,
-    ticks: to - from,
-    names: shape.names,
-    signalCount,
-    values: values.map((row) => row.slice(from, to)),
-    digest: new Uint8Array(32),
-  };
-}
+/** Transforms keep 15 digits of the largest lag; a slow pole's products lose as many as its memory squared has. */
+const TOLERANCE = 1e-11;
+const ticks = 3000;
+const values = plantValues(ticks);
+const seen: readonly [number, number] = [0, ticks - 1];
+const round = { ticks: 12, weight: Float64Array.of(1, 0.5) };
 
-function direct(bank: Bank, round: Round | null = null): Moments {
-  const z = values.map((row, c) => {
-    const own = row.map((value) => (value - scalings[c]!.mean) / scalings[c]!.scale);
-    const w = c < signalCount ? (round?.weight[c] ?? 0) : 0;
-    return own.map((value, t) => value - w * own[Math.max(0, t - (round?.ticks ?? 0))]!);
-  });
-  return gatherMoments({ values: z.map((r) => r.slice(0, ticks - 1)), signalCount, bank, horizon }, [
-    { fromIndex: 1, toIndex: ticks - 1 - horizon },
-  ])[0]!;
-}
-
-/** Largest difference over the largest entry, of each part. Lagged sums by Fourier transforms keep 14 digits or so. */
-function expectAlike(got: Moments, expected: Moments): void {
-  expect(got.origins).toBe(expected.origins);
-  for (const key of ['features', 'future', 'energy', 'featureSums', 'futureSums'] as const) {
-    const largest = expected[key].reduce((most, value) => Math.max(most, Math.abs(value)), 0);
-    let worst = 0;
-    for (let k = 0; k < expected[key].length; k++) worst = Math.max(worst, Math.abs(got[key][k]! - expected[key][k]!));
-    expect(worst / largest, key).toBeLessThan(1e-11);
-  }
+function momentsOf(factors: Factors, bank: Bank, taken: typeof round | null = null): Moments {
+  return momentsFromFactors(factors, { bank, horizon, scalings, signalCount, round: taken });
 }
 
 describe('momentsFromFactors', () => {
+  const factors = gathered(values).end();
+
   it.each([
-    ['means and resonators', { ...bank, lags: [], hasLevel: false }],
-    ['with level', { ...bank, lags: [], hasLevel: true }],
-    ['with lags', { ...bank, hasLevel: false }],
-    ['all', bank],
-  ])('%s', (_, one) => {
-    const gatherer = new FactorsGatherer(shape);
-    gatherer.take(seriesOf(0, ticks));
-    const got = momentsFromFactors(gatherer.end(), { bank: one, horizon, scalings, signalCount, round: null });
-    expectAlike(got, direct(one));
-    const round = { ticks: 12, weight: Float64Array.of(1, 0.5) };
-    const left = momentsFromFactors(gatherer.end(), { bank: one, horizon, scalings, signalCount, round });
-    expectAlike(left, direct(one, round));
+    ['means and resonators', { ...wholeBank, lags: [], hasLevel: false }],
+    ['the level beside them', { ...wholeBank, lags: [] }],
+    ['lags beside them', { ...wholeBank, hasLevel: false }],
+    ['level and lags', wholeBank],
+    ['lags alone', { decays: [], resonators: [], lags: [1, 3, 70] }],
+    ['no period', designBank({ periodTicks: 0, otherPeriods: [], horizon, learnTicks: 3000, channelCount: 3 })],
+    ['two periods', designBank({ periodTicks: 24, otherPeriods: [7.5], horizon, learnTicks: 3000, channelCount: 3 })],
+  ])('equals sums over the readings: %s', (_, bank) => {
+    expectAlike(momentsOf(factors, bank), direct(values, [seen], bank), TOLERANCE);
+  });
+
+  it('takes a round away as from the readings', () => {
+    expectAlike(momentsOf(factors, wholeBank, round), direct(values, [seen], wholeBank, round), TOLERANCE);
+  });
+
+  it('serves shorter and longer horizons alike', () => {
+    const wish = { bank: wholeBank, horizon: 12, scalings, signalCount, round: null };
+    const far = momentsFromFactors(factors, wish);
+    // The six last origins are missing, whose share of the sums is about as large.
+    const near = momentsOf(factors, wholeBank);
+    expect(near.origins - far.origins).toBe(6);
+    expect(Math.abs(far.energy[0]! / near.energy[0]! - 1)).toBeLessThan(0.01);
+  });
+
+  it.each([
+    ['a horizon', { horizon: 13 }, /horizons up to 12 ticks, asked for 13/],
+    ['a round', { round: { ticks: 25, weight: Float64Array.of(1, 1) } }, /rounds up to 24 ticks, asked for 25/],
+    ['a lag', { bank: { ...wholeBank, lags: [1, 100] } }, /ring lags up to 71 ticks, asked for 100/],
+  ])('refuses %s beyond its reach', (_, change, message) => {
+    const wish = { bank: wholeBank, horizon, scalings, signalCount, round: null };
+    expect(() => momentsFromFactors(factors, { ...wish, ...change })).toThrow(message);
   });
 });
+
+describe('weights by age', () => {
+  it('equal sums over the readings with weights', () => {
+    const halfLifeTicks = 400;
+    const short = values.map((row) => row.slice(0, 700));
+    const factors = gathered(short, 90, { ...shape, halfLifeTicks }).end();
+    // The last reading waits for its next; its tick is the one that weighs one in the sums.
+    expectAlike(momentsOf(factors, wholeBank), weighted(short, wholeBank, 698, halfLifeTicks), 1e-10);
+  });
+});
+
+/** Origins one by one, each weighted by its age at tick `newest`. */
+function weighted(values: readonly Float64Array[], bank: Bank, newest: number, halfLife: number): Moments {
+  const z = standardised(values, [0, newest + 1], null);
+  const blocks = Array.from({ length: newest - horizon }, (_, k) => ({ fromIndex: k + 1, toIndex: k + 2 }));
+  let sum: Moments | null = null;
+  let t = 1;
+  for (const one of eachMoments({ values: z, signalCount, bank, horizon }, blocks)) {
+    const weight = 2 ** (-(newest - t++) / halfLife);
+    const scaled = (row: Float64Array): Float64Array => row.map((value) => value * weight);
+    const part = {
+      origins: weight,
+      features: scaled(one.features),
+      future: scaled(one.future),
+      energy: scaled(one.energy),
+      featureSums: scaled(one.featureSums),
+      futureSums: scaled(one.futureSums),
+    };
+    sum = addInto(sum, part);
+  }
+  return sum!;
+}
