@@ -168,6 +168,7 @@ export const featuredKernel: Kernel<FeaturedModel, FeaturedCore> = {
   settle,
   bridge: (model, core, channel, missed, step) => linearKernel.bridge?.(asLinear(model), core, channel, missed, step),
   advance: (model, core, state, channel) => linearKernel.advance(asLinear(model), core, state, channel),
+  isDerived: true,
   refresh,
   own: { count: (model) => model.featureCount, features: (core) => core.features },
   paths: (model, core, state, steps, plan, out) => linearKernel.paths(asLinear(model), core, state, steps, plan, out),

@@ -48,4 +48,4 @@ export {
   stepSwitched,
 } from './switched-step.ts';
 export { trackBounds } from './tracking.ts';
-export { update } from './update.ts';
+export { catchUp, foldUnseen, update } from './update.ts';

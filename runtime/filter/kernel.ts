@@ -52,6 +52,8 @@ export interface Kernel<M extends CommonModel, C extends Core> {
    * missed × `step` at the tick before this one; before `advance`. Absent: the kind's memories cannot be moved so.
    */
   bridge?(model: M, core: C, channel: number, missed: number, step: number): void;
+  /** Whether `refresh` moves nothing that a later tick depends on, so that it may wait until somebody looks. */
+  readonly isDerived?: true;
   /** Once a tick after all channels, and after a restore (`state.tick` ≥ 0): everything that follows from the memories. */
   refresh(model: M, core: C, state: FilterState): void;
   /** What each channel's own past looks like, (nc × count), for kinds that keep it; absent: they do not. */

@@ -245,6 +245,7 @@ export const linearKernel: Kernel<LinearModel, LinearCore> = {
   settle: (_model, core, state, channel) => settleChannel(core.bank, core.memory, core.ring, state.rest, channel),
   advance: (model, core, state, channel) => advanceChannel(model, core.bank, core.memory, state.rest, channel),
   bridge: bridgeMemories,
+  isDerived: true,
   refresh: refreshLinear,
   own: { count: (model) => model.featureCount, features: (core) => core.features },
   paths: linearPaths,

@@ -46,9 +46,65 @@ export function update(model: Model, state: FilterState, tick: number, readings:
   if (model.agreement !== undefined) watchAgreement(model, model.agreement, state);
 }
 
+/**
+ * Folds a tick in as `update` does where every reading is there and taken, and leaves out all that nobody looks at: the
+ * forecast it would be held against, and what the next one follows from. For warming a filter up on history; `catchUp` makes up
+ * for it. The guard is not asked, predicted values and innovations stay as they were. False, with nothing moved, where the
+ * tick needs `update`: a reading is or was missing, a sensor hangs, or the kind cannot.
+ *
+ * shapes  as `update`
+ * units   as `update`
+ * throws  as `update`
+ * cost    that of moving the memories; allocates nothing
+ */
+export function foldUnseen(model: Model, state: FilterState, tick: number, readings: Float64Array): boolean {
+  checkTurn(model, state, tick, readings);
+  const kernel = kernelOf(model);
+  if (kernel.isDerived !== true || state.tick < 0) return false;
+  for (let c = 0; c < model.channelCount; c++) {
+    if (readings[c] - readings[c] !== 0 || state.started[c] === 0 || state.age[c] > 0) return false;
+    if (wouldHang(model, state, c, readings[c])) return false;
+  }
+  kernel.beforeTick(model, state.core, state);
+  for (let c = 0; c < model.channelCount; c++) {
+    if (model.stuck !== undefined && c < model.signalCount) countRepeats(state, c, readings[c]);
+    const z = standardised(model, state, c, readings[c]);
+    state.reading[c] = z;
+    state.observed[c] = FOLDED;
+    state.lean[c] = 0;
+    if (state.passed[c] > 0) state.passed[c]--;
+    state.value[c] = z;
+    takeRound(model, state, c, tick, z);
+    kernel.advance(model, state.core, state, c);
+  }
+  state.tick = tick;
+  if (model.agreement !== undefined) watchAgreement(model, model.agreement, state);
+  return true;
+}
+
+/**
+ * Works out what `foldUnseen` left out, before the next `update` or forecast.
+ *
+ * cost    that of the kind's kernel; allocates nothing
+ */
+export function catchUp(model: Model, state: FilterState): void {
+  if (state.tick >= 0) kernelOf(model).refresh(model, state.core, state);
+}
+
+/** Clipped and standardised. */
+function standardised(model: CommonModel, state: FilterState, c: number, reading: number): number {
+  const y = Math.min(model.clipHigh[c], Math.max(model.clipLow[c], reading));
+  return Math.min(state.high[c], Math.max(state.low[c], (y - model.mean[c]) / model.scale[c]));
+}
+
+/** Whether a signal would hang with one more such reading. */
+function wouldHang({ stuck, signalCount }: CommonModel, state: FilterState, c: number, reading: number): boolean {
+  if (stuck?.acts !== true || c >= signalCount || stuck.ticks[c] === 0) return false;
+  return reading === state.repeated[c] && state.repeats[c] + 1 >= stuck.ticks[c];
+}
+
 function observe(model: Model, state: FilterState, c: number, tick: number, readings: Float64Array): void {
-  const y = Math.min(model.clipHigh[c], Math.max(model.clipLow[c], readings[c]));
-  const z = Math.min(state.high[c], Math.max(state.low[c], (y - model.mean[c]) / model.scale[c]));
+  const z = standardised(model, state, c, readings[c]);
   state.reading[c] = z;
   state.innovation[c] = z - state.predicted[c];
   const limit = guardLimit(model, state, c);

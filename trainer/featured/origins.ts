@@ -3,9 +3,10 @@
  * map leaves over of the path ahead. The gateway's own filter runs over the record, gaps and all; the path's remainder is
  * expressed on the model's horizon curves, so that there are a few numbers instead of a path.
  */
-import { createState, forecastPath, type LinearModel, settlingTicksOf, update } from '@stillwell/runtime/filter';
+import { createState, forecastPath, type LinearModel, settlingTicksOf } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
 import type { Filled } from '../identify/fill.ts';
+import { Follower } from '../judge/follow.ts';
 import { cholesky, solveCholesky, solveLower } from '../linalg/cholesky.ts';
 import { multiplyTransposed, transpose } from '../linalg/products.ts';
 import type { TickSpan } from '../span.ts';
@@ -113,17 +114,16 @@ function runFilter(
   visit: (t: number, state: ReturnType<typeof createState>, path: Float64Array) => void,
 ): Origins['folded'] {
   if (at.length === 0) return { from: 0, values: [] };
-  const state = createState(model);
+  const follower = new Follower(model, series, createState(model));
+  const { state } = follower;
   const path = new Float64Array(model.signalCount * model.horizon);
-  const readings = new Float64Array(model.channelCount);
   const warm = Math.max(model.warmupTicks, settlingTicksOf(model));
   let next = 0;
   const from = Math.max(0, at[0] - warm);
   const values = series.values.map(() => new Float64Array(at[at.length - 1] + 1 - from));
   for (let t = from; next < at.length; t++) {
-    for (let c = 0; c < readings.length; c++) readings[c] = series.values[c][t];
-    update(model, state, series.firstTick + t, readings);
-    for (let c = 0; c < readings.length; c++) values[c][t - from] = state.value[c];
+    follower.take(t, t === at[next]);
+    for (let c = 0; c < values.length; c++) values[c][t - from] = state.value[c];
     if (t !== at[next]) continue;
     forecastPath(model, state, path);
     visit(t, state, path);

@@ -6,6 +6,7 @@
 import type { Model } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
 import type { TickSpan } from '../span.ts';
+import { scoreEvery } from './origin-budget.ts';
 import { standingAt } from './replay.ts';
 import { signalErrors } from './replay-scores.ts';
 
@@ -44,7 +45,8 @@ export function reliance(model: Model, series: Series, span: TickSpan): Reliance
   if (ticks < LEAST_HORIZONS * H) return null;
   const judged = { fromTick: span.toTick - ticks, toTick: span.toTick };
   const silentFrom = judged.fromTick - silence;
-  const standing = standingAt(model, series, { ...judged, fromTick: judged.fromTick - 1 }, silentFrom);
+  const isLong = scoreEvery(span.toTick - span.fromTick) > 1;
+  const standing = standingAt(model, series, { ...judged, fromTick: judged.fromTick - 1 }, silentFrom, isLong);
   const whole = signalErrors(model, series, judged, { standing });
   const ratio = new Float64Array(ny * nc);
   for (let c = 0; c < nc; c++) {
