@@ -5,5 +5,7 @@ export { openStore } from './desk/store/open.ts';
 export { loadHistory } from './history/load.ts';
 export { designBank, featureCount } from './identify/bank.ts';
 export { fitWindowRidge } from './judge/window-ridge.ts';
+export { createKernels, type Kernels } from './kernels/kernels.ts';
 export { FIT_DEFAULTS, type FitResult, fit } from './pipeline.ts';
 export { bundleWork, memoryWork, timeWork, type Work } from './sizing/fit-work.ts';
+export * from './wide/index.ts';
