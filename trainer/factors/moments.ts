@@ -9,6 +9,7 @@ import { type Bank, featureCount } from '../identify/bank.ts';
 import type { Moments } from '../identify/moments.ts';
 import { flattenPoles } from '../identify/poles.ts';
 import type { Scaling } from '../identify/scaling.ts';
+import { scaleToAll } from './availability.ts';
 import type { Factors } from './factors.ts';
 import { type LagGrid, layGrid } from './lag-grid.ts';
 import { addLagsAndLevels } from './level-sums.ts';
@@ -80,6 +81,8 @@ export function momentsFromFactors(factors: Factors, wish: MomentsWish): Moments
     return (1 - roundWeights[c]) * (mean - offset);
   });
   addLagsAndLevels({ shape, poleShape, pairs, paths, recursive, bank, signalCount, means, out });
+  const layout = { channels: nc, signalCount, features: featureCount(bank), horizon };
+  scaleToAll(out, pairs.counts(), layout);
   rescale(out, scalings, featureCount(bank), signalCount, horizon);
   return out;
 }

@@ -215,6 +215,12 @@ export class PairSums {
     return sum;
   }
 
+  /** (nc × nc) of `count`. */
+  counts(): Float64Array {
+    const nc = this.#channels;
+    return Float64Array.from({ length: nc * nc }, (_, at) => this.count(Math.floor(at / nc), at % nc));
+  }
+
   /** Σ w(t) over all runs. */
   origins(): number {
     const { factors, horizon } = this.#shape;
