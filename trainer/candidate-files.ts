@@ -5,7 +5,6 @@ import type { NewFile } from '@stillwell/runtime/files';
 import type { Survey } from './history/survey.ts';
 import { hindcastJson } from './judge/hindcast-json.ts';
 import { planWorthJson } from './judge/plan-worth.ts';
-import { writeOutputs } from './output-file.ts';
 import type { FitResult } from './pipeline.ts';
 
 /** Names of the files, for help texts and last lines. */
@@ -28,15 +27,6 @@ export async function candidateFiles(
     { path: join(folder, 'report.html'), bytes: report },
     { path: join(folder, 'candidate.swc'), bytes: result.document },
   ];
-}
-
-/**
- * Writes them, all or none.
- *
- * throws  TrainError 'file' with the system's reason
- */
-export async function writeCandidate(folder: string, site: Site, survey: Survey, result: FitResult): Promise<void> {
-  writeOutputs(await candidateFiles(folder, site, survey, result));
 }
 
 /** The result as plain JSON. */

@@ -1,12 +1,17 @@
 /** `stillwell refit`: a new candidate from what the desk collected. */
+import { join } from 'node:path';
 import { ADVISORY, type Site } from '@stillwell/protocol';
 import { Command } from 'commander';
 import { openBundleFile } from '../bundle-file.ts';
-import { CANDIDATE_FILES, candidateFacts, writeCandidate } from '../candidate-files.ts';
+import { CANDIDATE_FILES, candidateFacts, candidateFiles } from '../candidate-files.ts';
+import { TrainError } from '../errors.ts';
+import type { Factors } from '../factors/factors.ts';
+import { FACTORS_FILE } from '../factors/keeper.ts';
 import type { FitOptions } from '../fit-options.ts';
 import { fitSummary } from '../fit-summary.ts';
 import type { History } from '../history/history.ts';
-import { kindOption, reason, several, share, wholeNumber } from '../option-values.ts';
+import { halfLifeOption, halfLifeTicks, kindOption, reason, several, share, wholeNumber } from '../option-values.ts';
+import { writeOutputs } from '../output-file.ts';
 import { createProgress } from '../progress.ts';
 import type { RefitResult } from '../refit/refit.ts';
 import { readSite } from '../site-file.ts';
@@ -18,6 +23,7 @@ interface RefitCommandOptions {
   readonly archive: string;
   readonly site: string;
   readonly history?: string[];
+  readonly factors?: string;
   readonly previous?: string;
   readonly out: string;
   readonly timeZone?: string;
@@ -25,6 +31,7 @@ interface RefitCommandOptions {
   readonly until?: string;
   readonly learnShare?: number;
   readonly calibrateShare?: number;
+  readonly halfLife?: number;
   readonly maxBytes: number;
   readonly useAll: boolean;
   readonly kind: FitOptions['kind'];
@@ -39,14 +46,19 @@ export function refitCommand(): Command {
     .description('Learns a new candidate from the archive of a desk, and says whether it beats the bundle that serves.')
     .requiredOption('--archive <dir>', 'data folder of the desk')
     .requiredOption('--site <file>', 'site file')
-    .requiredOption('--out <folder>', 'folder for candidate.swc, report.html, hindcast.json and survey.json')
+    .requiredOption('--out <folder>', `folder for ${CANDIDATE_FILES} and factors.swf`)
     .option('--history <files...>', 'files of the first fit as well; the archive wins where both cover a tick', several)
+    .option(
+      '--factors <file>',
+      'factors.swf of the last fit or refit, in place of history files: only newer segments are read',
+    )
     .option('--previous <bundle>', 'bundle that serves: compared with, and named in the new one as its predecessor')
     .option('--time-zone <zone>', "zone of history times that carry none; the site's otherwise")
     .option('--from <time>', 'leave out readings before this time')
     .option('--until <time>', 'leave out readings from this time on')
     .option('--learn-share <share>', 'share to learn from; by default the newest readings calibrate and judge', share)
     .option('--calibrate-share <share>', 'share after it for penalties and bounds', share)
+    .addOption(halfLifeOption())
     .option('--max-bytes <bytes>', 'largest bundle document', wholeNumber(2048, 65_536), 24 * 1024)
     .option('--no-use-all', 'ship the model as judged instead of learning once more from everything')
     .addOption(kindOption())
@@ -55,7 +67,7 @@ export function refitCommand(): Command {
     .option('--json', 'the result as JSON', false)
     .addHelpText(
       'after',
-      '\nExample:\n  stillwell refit --archive desk-data --site site.yaml --history logs/2025.csv --previous pump-7.swb --out refit',
+      '\nExample:\n  stillwell refit --archive desk-data --site site.yaml --factors fits/factors.swf --previous pump-7.swb --out refit',
     )
     .action(run);
 }
@@ -66,7 +78,8 @@ async function run(options: RefitCommandOptions): Promise<void> {
   const span = timeSpan(options, site.timeZone);
   const { fromMs, untilMs } = span;
   const [{ readArchive }, { refit }] = await Promise.all([import('../desk/archive.ts'), import('../refit/refit.ts')]);
-  const archive = await readArchive(options.archive, site.site);
+  const factors = await factorsOf(options, site);
+  const archive = await readArchive(options.archive, site.site, factors?.toTick);
   const files = await readFiles(site, options, span);
   const progress = createProgress('refitting', 'steps');
   let steps = 0;
@@ -74,6 +87,8 @@ async function run(options: RefitCommandOptions): Promise<void> {
     {
       archive,
       files,
+      factors,
+      halfLifeTicks: halfLifeTicks(options.halfLife, site),
       site,
       previous,
       ...(fromMs === undefined ? {} : { fromTick: Math.ceil(fromMs / site.tickMs) }),
@@ -92,10 +107,38 @@ async function run(options: RefitCommandOptions): Promise<void> {
     },
   );
   progress.end();
-  await writeCandidate(options.out, site, result.absorbed.survey, result.fit);
+  const { factors: bytes } = result;
+  writeOutputs([
+    ...(await candidateFiles(options.out, site, result.absorbed.survey, result.fit)),
+    ...(bytes === null ? [] : [{ path: join(options.out, FACTORS_FILE), bytes }]),
+  ]);
   process.stdout.write(
     options.json ? `${JSON.stringify(resultJson(options.out, result), null, 2)}\n` : text(options.out, result),
   );
+}
+
+/** What was learned before, if it is of this site. */
+async function factorsOf(
+  { factors: path, history, halfLife }: RefitCommandOptions,
+  site: Site,
+): Promise<Factors | null> {
+  if (path === undefined) return null;
+  for (const [option, given] of [
+    ['--history', history],
+    ['--half-life', halfLife],
+  ] as const) {
+    if (given === undefined) continue;
+    const why =
+      option === '--history' ? 'the factors hold what those files taught' : 'factors keep the one they were made with';
+    throw new TrainError(
+      'options',
+      `${option}: expected no --factors beside it, got both: ${why}; leave one of them out`,
+    );
+  }
+  const { checkBelongs, readFactors } = await import('../factors/file.ts');
+  const factors = readFactors(path);
+  checkBelongs(factors, site, path);
+  return factors;
 }
 
 async function readFiles(site: Site, options: RefitCommandOptions, span: TimeSpan): Promise<History | null> {

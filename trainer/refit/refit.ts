@@ -6,7 +6,12 @@ import { describeSchemaDifference, type Site } from '@stillwell/protocol';
 import type { OpenDocument } from '../bundle-file.ts';
 import type { Archive } from '../desk/archive.ts';
 import { TrainError } from '../errors.ts';
+import type { Factors } from '../factors/factors.ts';
+import { FactorsKeeper } from '../factors/keeper.ts';
 import type { History } from '../history/history.ts';
+import { LONG_FROM, RECENT_TICKS } from '../history/long-limits.ts';
+import type { Series } from '../history/series.ts';
+import { sliceSeries } from '../history/slice-series.ts';
 import { type FitOptions, type FitResult, fit } from '../pipeline.ts';
 import { type Absorbed, absorb } from './absorb.ts';
 import { type Comparison, compare } from './compare.ts';
@@ -16,6 +21,10 @@ export interface RefitInput {
   readonly archive: Archive;
   /** Files of the first fit, read; null where the archive stands alone. */
   readonly files: History | null;
+  /** What is known of the time before, in place of files; null: nothing. Only what is newer is taken from the archive. */
+  readonly factors: Factors | null;
+  /** Ticks after which a reading counts half in factors made anew; those given keep their own. */
+  readonly halfLifeTicks: number | null;
   readonly site: Site;
   readonly previous: OpenDocument | null;
   /** Ticks fromTick <= n < toTick of archive and files are used. */
@@ -29,6 +38,8 @@ export interface RefitResult {
   readonly fit: FitResult;
   /** null without a previous bundle. */
   readonly comparison: Comparison | null;
+  /** The factors of everything, for the next refit; null where the site has too many signals for them. */
+  readonly factors: Uint8Array | null;
 }
 
 /** Shares as FitOptions; null: chosen so that the newest readings calibrate and judge, and most of them are learned. */
@@ -52,11 +63,15 @@ export async function refit(input: RefitInput, options: RefitOptions): Promise<R
   if (difference !== null) {
     throw new TrainError('bundle', `--previous was made for other readings than the site file declares: ${difference}`);
   }
-  const absorbed = absorb(cut(input.archive, input), input.files, site);
-  const shares = sharesFor(absorbed, site.horizon);
+  const absorbed = absorb(cut(input.archive, newerThan(input)), input.files, site);
+  const keeper = new FactorsKeeper(site, input.halfLifeTicks, input.factors);
+  const { older, window } = cutLong(absorbed.series);
+  if (older !== null) keeper.sink().take(older);
+  const shares = sharesFor({ series: window, newFromTick: absorbed.newFromTick }, site.horizon);
   const result = await fit(
     {
-      series: absorbed.series,
+      series: window,
+      earlier: keeper.earlier(),
       site,
       survey: absorbed.survey,
       lattices: absorbed.lattices,
@@ -68,8 +83,24 @@ export async function refit(input: RefitInput, options: RefitOptions): Promise<R
       calibrateShare: options.calibrateShare ?? shares.calibrateShare,
     },
   );
-  const comparison = previous === null ? null : compare(result, previous, absorbed.series);
-  return { absorbed, fit: result, comparison };
+  const comparison = previous === null ? null : compare(result, previous, window);
+  return { absorbed, fit: result, comparison, factors: keeper.close(window) };
+}
+
+/** What is asked for, and of that only what the factors have not taken in. */
+function newerThan({ factors, fromTick, toTick }: RefitInput): Pick<RefitInput, 'fromTick' | 'toTick'> {
+  const known = factors?.toTick ?? Number.NEGATIVE_INFINITY;
+  return {
+    fromTick: Math.max(known, fromTick ?? Number.NEGATIVE_INFINITY),
+    ...(toTick === undefined ? {} : { toTick }),
+  };
+}
+
+/** The newest part of a long series, and what is older; all of a short one. */
+function cutLong(series: Series): { readonly older: Series | null; readonly window: Series } {
+  if (series.ticks <= LONG_FROM) return { older: null, window: series };
+  const at = series.ticks - RECENT_TICKS;
+  return { older: sliceSeries(series, 0, at), window: sliceSeries(series, at, series.ticks) };
 }
 
 /** The archive between two ticks. */
@@ -92,8 +123,8 @@ function cut(archive: Archive, span: Pick<RefitInput, 'fromTick' | 'toTick'>): A
  * With files before it, a short archive would fall into the judged part whole and teach nothing. So its last quarter
  * judges, the quarter before calibrates, and the rest is learned from, within what each part needs at least.
  */
-function sharesFor({ series, newFromTick }: Absorbed, horizon: number) {
-  const fresh = series.firstTick + series.ticks - newFromTick;
+function sharesFor({ series, newFromTick }: Pick<Absorbed, 'series' | 'newFromTick'>, horizon: number) {
+  const fresh = series.firstTick + series.ticks - Math.max(newFromTick, series.firstTick);
   const share = (most: number): number => {
     const least = Math.min(most, (8 * horizon + 64) / series.ticks);
     return Math.max(least, Math.min(most, fresh / 4 / series.ticks));

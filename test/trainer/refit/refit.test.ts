@@ -3,6 +3,8 @@ import { bundleDigest, parseSite } from '@stillwell/protocol';
 import { describe, expect, test } from 'vitest';
 import { openDocument } from '../../../trainer/bundle-file.ts';
 import type { Archive } from '../../../trainer/desk/archive.ts';
+import { decodeFactors } from '../../../trainer/factors/file.ts';
+import { FactorsKeeper } from '../../../trainer/factors/keeper.ts';
 import type { History } from '../../../trainer/history/history.ts';
 import { prepare } from '../../../trainer/history/load.ts';
 import { FIT_DEFAULTS, fit as learn } from '../../../trainer/pipeline.ts';
@@ -118,17 +120,56 @@ test('a plant that changed is learned anew, held against the old bundle, and rec
   const { learnShare: _, calibrateShare: __, ...rest } = FIT_DEFAULTS;
   const archive = archiveOf(values, 1500, 3000);
   const options = { ...rest, useAll: true, learnShare: null, calibrateShare: null };
-  const { fit: result, comparison } = await refit({ archive, files: null, site, previous }, options);
+  const { fit: result, comparison } = await refit(
+    { archive, files: null, factors: null, halfLifeTicks: null, site, previous },
+    options,
+  );
   expect(result.bundle.provenance.previous).toEqual(bundleDigest(old.document));
   expect(comparison!.seenByPrevious).toBe(0);
   expect(comparison!.ratio).toBeLessThan(0.8);
   expect(comparison).toMatchObject({ isRecommended: true, sentence: expect.stringContaining('Recommended: seal it') });
   // The same data against itself gains nothing, and says so.
   const again = await refit(
-    { archive, files: null, site, previous: openDocument(result.document) },
+    { archive, files: null, factors: null, halfLifeTicks: null, site, previous: openDocument(result.document) },
     { ...options, useAll: false },
   );
   expect(again.comparison!.isRecommended).toBe(false);
   expect(again.comparison!.seenByPrevious).toBe(1);
   expect(again.comparison!.sentence).toContain('had seen 100 % of that time');
+});
+
+test('factors stand in for the files they were made from, and go on with what is new', {
+  timeout: 60_000,
+}, async () => {
+  const values = plant(4000, 4000);
+  const files = historyOf(values, 0, 2500);
+  const keeper = new FactorsKeeper(site, null);
+  const { series } = prepare(files, site);
+  const factors = decodeFactors(keeper.close(series)!, 'factors.swf');
+  const archive = archiveOf(values, 2000, 4000);
+  const { learnShare: _, calibrateShare: __, ...rest } = FIT_DEFAULTS;
+  const options = { ...rest, kind: 'linear' as const };
+  const around = { archive, site, previous: null, halfLifeTicks: null };
+  // The last 300 ticks judge, and the 300 before them calibrate, either way.
+  const whole = await refit(
+    { ...around, files, factors: null },
+    { ...options, learnShare: 0.85, calibrateShare: 0.075 },
+  );
+  const after = await refit({ ...around, files: null, factors }, { ...options, learnShare: 0.6, calibrateShare: 0.2 });
+  expect(after.fit.earlier).toEqual({ fromTick: START, toTick: START + 2500, ticks: 2500 });
+  expect(after.absorbed.series.firstTick).toBe(START + 2500);
+  expect(after.fit.judged).toEqual(whole.fit.judged);
+  const mean = ({ fit: { hindcast } }: { fit: { hindcast: { mseStandardised: Float64Array; scale: Float64Array } } }) =>
+    hindcast.mseStandardised.reduce((sum, mse, cell) => sum + mse * hindcast.scale[Math.floor(cell / 12)]! ** 2, 0);
+  const alone = await refit(
+    { ...around, files: null, factors: null, fromTick: START + 2500 },
+    { ...options, learnShare: 0.6, calibrateShare: 0.2 },
+  );
+  // Choices are judged on other stretches; what the older readings teach is there all the same.
+  expect(mean(after) / mean(whole)).toBeLessThan(1.06);
+  expect(mean(after) / mean(alone)).toBeLessThan(0.9);
+  expect(after.fit.bundle.provenance.options).toContain(`"earlier":[${START},${START + 2500}]`);
+  const next = decodeFactors(after.factors!, 'factors.swf');
+  expect([next.fromTick, next.toTick, next.ticks]).toEqual([START, START + 4000, 4000]);
+  expect(after.factors!.length).toBeLessThan(1.05 * whole.factors!.length);
 });
