@@ -5,8 +5,8 @@ import { Command } from 'commander';
 import { openBundleFile } from '../bundle-file.ts';
 import { TrainError } from '../errors.ts';
 import { believe, excludedNotes } from '../exclusions.ts';
+import { lookLimits, olderNote, readNewest } from '../history/long.ts';
 import { asTheGateway } from '../history/plausible.ts';
-import { readHistory } from '../history/read.ts';
 import type { Series } from '../history/series.ts';
 import { layOnTicks } from '../history/ticks.ts';
 import { declaredLimits } from '../judge/crossings.ts';
@@ -41,7 +41,11 @@ export function hindcastCommand(): Command {
     .description('Replays a bundle over a history tick by tick and scores its forecasts beside the obvious guesses.')
     .requiredOption('--bundle <file>', 'sealed bundle (.swb) or candidate (.swc)')
     .requiredOption('--site <file>', 'site file')
-    .requiredOption('--history <files...>', 'CSV or NDJSON files, also gzipped', several)
+    .requiredOption(
+      '--history <files...>',
+      'CSV, NDJSON or Parquet files, text also as .gz or .zst; folders and patterns too',
+      several,
+    )
     .option('--time-zone <zone>', "zone of history times that carry none; the site's otherwise")
     .option(
       '--from <time>',
@@ -68,14 +72,15 @@ async function run(options: HindcastOptions): Promise<void> {
   }
   const { fromMs, untilMs } = timeSpan(options, site.timeZone);
   const progress = createProgress('reading');
-  const history = await readHistory(options.history, site, {
+  const { history, older, remembered } = await readNewest(options.history, site, {
     zone: options.timeZone ?? null,
     ...(untilMs === undefined ? {} : { untilMs }),
     progress,
+    limits: lookLimits(site),
   });
   progress.end();
   // On the bundle's lattices, as the gateway would take them, whatever this history alone would show.
-  const { seen, mark } = believe(history, site);
+  const { seen, mark } = believe(history, site, remembered);
   const series = mark(
     layOnTicks(
       seen,
@@ -86,7 +91,10 @@ async function run(options: HindcastOptions): Promise<void> {
   );
   const learned = learnedSpans(bundle);
   const fromTick = fromMs === undefined ? learned.seenTo : Math.ceil(fromMs / series.tickMs);
-  const span = judgedSpan(series, bundle, fromTick, fromMs !== undefined);
+  // The filter warms up on the first ticks of a newest part, which have readings before them that it did not see.
+  const warmFrom = older === null ? 0 : series.firstTick + bundle.warmupTicks;
+  const span = judgedSpan(series, bundle, Math.max(fromTick, warmFrom), fromMs !== undefined);
+  const note = olderNote(older, series.tickMs);
   refuseUnread(series, span, options.history);
   const units = bundle.channels.map((channel) => channel.unit);
   const limits = declaredLimits(site.signals.map((signal) => signal.limits));
@@ -99,11 +107,12 @@ async function run(options: HindcastOptions): Promise<void> {
     site: bundle.site,
     advisory: ADVISORY,
     seen_share: seenShare,
+    ...(note === null ? {} : { note }),
   };
   process.stdout.write(
     options.json
       ? `${JSON.stringify({ ...head, ...hindcastJson(cast), ...planWorthJson(worth) }, null, 2)}\n`
-      : `${tableText(cast)}\n\n${judgedText(cast)}\n${planWorthText(worth)}${seenText(seenShare)}${notesText(series)}\n${ADVISORY}\n`,
+      : `${tableText(cast)}\n\n${judgedText(cast)}\n${planWorthText(worth)}${seenText(seenShare)}${notesText(series)}${note === null ? '' : `Note: ${note}\n`}\n${ADVISORY}\n`,
   );
 }
 

@@ -27,7 +27,7 @@ export function siteCommand(): Command {
     )
     .requiredOption(
       '--history <files...>',
-      'CSV (wide, or long with time, signal, value) or NDJSON files, also gzipped',
+      'CSV (wide, or long with time, signal, value), NDJSON or Parquet files, text also as .gz or .zst; folders and patterns too',
       several,
     )
     .option('--name <name>', 'name of the site, one level of its topics', 'my-site')
@@ -51,7 +51,7 @@ async function writeSite(options: SiteOptions): Promise<void> {
       '--json: expected --out beside it, since the site file itself goes to standard output; add --out',
     );
   if (options.out !== undefined) refuseToReplace(options.out, options.force);
-  const { site, comments } = await draftSite(options.history, {
+  const { site, comments, note } = await draftSite(options.history, {
     name: options.name,
     equipmentClass: options.class,
     zone: options.timeZone ?? null,
@@ -60,6 +60,7 @@ async function writeSite(options: SiteOptions): Promise<void> {
   const text = formatSite(site, comments);
   // Whatever is written must be read back: the same check the gateway makes.
   parseSite(text, options.out ?? 'site file');
+  if (note !== null && !options.json) process.stderr.write(`${note}\n`);
   if (options.out === undefined) {
     process.stdout.write(text);
     return;
@@ -67,7 +68,7 @@ async function writeSite(options: SiteOptions): Promise<void> {
   writeOutput(options.out, text);
   process.stdout.write(
     options.json
-      ? `${JSON.stringify({ out: options.out, site: site.site, tick_ms: site.tickMs, horizon: site.horizon, signals: site.signals.map(({ name }) => name) })}\n`
+      ? `${JSON.stringify({ out: options.out, site: site.site, tick_ms: site.tickMs, horizon: site.horizon, signals: site.signals.map(({ name }) => name), ...(note === null ? {} : { note }) })}\n`
       : `${options.out}: ${site.site}, ${counted(site.signals.length, 'signal')}, tick ${site.tickMs / 1000} s, horizon ${site.horizon} ticks; go over it before fitting\n`,
   );
 }

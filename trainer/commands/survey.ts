@@ -1,7 +1,10 @@
 /** `stillwell survey`: what is wrong with a history, before anything is learned from it. */
+import type { Site } from '@stillwell/protocol';
 import { Command } from 'commander';
-import { type LoadedHistory, loadHistory, prepare } from '../history/load.ts';
+import { prepare } from '../history/load.ts';
+import { LET_PASS, loadLong, lookLimits, olderNote } from '../history/long.ts';
 import { draftSite } from '../history/site-draft.ts';
+import type { Survey } from '../history/survey.ts';
 import { surveyText } from '../history/survey-text.ts';
 import { several } from '../option-values.ts';
 import { writeOutput } from '../output-file.ts';
@@ -24,7 +27,7 @@ export function surveyCommand(): Command {
     )
     .requiredOption(
       '--history <files...>',
-      'CSV (wide, or long with time, signal, value) or NDJSON files, also gzipped',
+      'CSV (wide, or long with time, signal, value), NDJSON or Parquet files, text also as .gz or .zst; folders and patterns too',
       several,
     )
     .option('--site <file>', 'site file; without one, signals and tick are found in the files')
@@ -41,25 +44,38 @@ export function surveyCommand(): Command {
 async function survey(options: SurveyOptions): Promise<void> {
   const zone = options.timeZone ?? null;
   const progress = createProgress('reading');
-  const { survey: found } =
+  const { survey: found, note } =
     options.site === undefined
       ? await surveyWithoutSite(options.history, zone, progress)
-      : await loadHistory(options.history, readSite(options.site), { zone, progress });
-  const json = `${JSON.stringify(found, null, 2)}\n`;
+      : await surveyOf(options.history, readSite(options.site), zone, progress);
+  const json = `${JSON.stringify(note === null ? found : { ...found, note }, null, 2)}\n`;
   if (options.out !== undefined) writeOutput(options.out, json);
-  process.stdout.write(options.json ? json : surveyText(found));
+  process.stdout.write(options.json ? json : `${surveyText(found)}${note === null ? '' : `\n${note}\n`}`);
 }
 
-async function surveyWithoutSite(
+/** A survey, and what it leaves out of a long history. */
+interface Surveyed {
+  readonly survey: Survey;
+  readonly note: string | null;
+}
+
+async function surveyOf(
   files: readonly string[],
+  site: Site,
   zone: string | null,
   progress: Progress,
-): Promise<LoadedHistory> {
-  const { history, undeclared } = await draftSite(files, {
+): Promise<Surveyed> {
+  const options = { zone, progress, limits: lookLimits(site) };
+  const { survey: found, older } = await loadLong(files, site, options, () => LET_PASS);
+  return { survey: found, note: olderNote(older, site.tickMs) };
+}
+
+async function surveyWithoutSite(files: readonly string[], zone: string | null, progress: Progress): Promise<Surveyed> {
+  const { history, undeclared, note } = await draftSite(files, {
     name: 'history',
     equipmentClass: 'general',
     zone,
     progress,
   });
-  return prepare(history, undeclared);
+  return { survey: prepare(history, undeclared).survey, note };
 }

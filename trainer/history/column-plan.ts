@@ -81,8 +81,13 @@ function timeKindOf(path: string, column: Column, instants: ReadonlySet<string>)
   );
 }
 
+/** True for a type whose values are readings. */
+export function isOfNumbers(type: string): boolean {
+  return NUMBERS.test(type);
+}
+
 function checkNumbers(path: string, { name, type }: Column): void {
-  if (NUMBERS.test(type)) return;
+  if (isOfNumbers(type)) return;
   throw refusal({ file: path, field: name }, 'numbers', words(type), 'write the readings as a column of numbers');
 }
 
@@ -130,8 +135,8 @@ export async function planColumns(
   return { ...common, ...wide, format: 'wide Parquet' };
 }
 
-/** Columns of a long file; the signal's is -1 where the folder names it. */
-function longOf(
+/** Columns of a long file, null in a wide one; the signal's is -1 where the folder names it. */
+export function longOf(
   names: readonly string[],
   folderSignal: string | null,
 ): { readonly time: number; readonly signal: number; readonly value: number } | null {

@@ -5,7 +5,10 @@
 import { MAX_CHANNELS, type PayloadReading, toName } from '@stillwell/protocol';
 import { TrainError } from '../errors.ts';
 import { payloadOf, topicOf } from './capture.ts';
+import { ColumnsEngine } from './columns-engine.ts';
 import { longColumns, readHeader, timeColumn } from './csv-header.ts';
+import { discoverColumns } from './discover-columns.ts';
+import { findFiles } from './find-files.ts';
 import { findFormat } from './format.ts';
 import { inspectFile, readBlocks } from './input-file.ts';
 import { LineObjects } from './ndjson.ts';
@@ -121,8 +124,14 @@ interface Scans {
   readonly topics: TopicScan;
 }
 
-async function scanFile(path: string, scans: Scans): Promise<void> {
-  const blocks = readBlocks(inspectFile(path), () => {});
+async function scanFile(path: string, scans: Scans, engine: ColumnsEngine): Promise<void> {
+  const file = inspectFile(path);
+  if (file.kind === 'Parquet') {
+    for (const [name, kind] of await discoverColumns(path, engine))
+      if ((scans.columns.get(name) ?? null) === null) scans.columns.set(name, kind);
+    return;
+  }
+  const blocks = readBlocks(file, () => {});
   let push: ((block: Buffer) => void) | null = null;
   let isDone = (): boolean => false;
   const note = (name: string, text: string): void => {
@@ -177,9 +186,15 @@ function topicLabels(found: readonly { topic: string; payload: PayloadReading }[
  *
  * throws  TrainError 'file' or 'history' where a file cannot be read, or holds no column of numbers at all
  */
-export async function discoverSignals(files: readonly string[]): Promise<Discovered[]> {
+export async function discoverSignals(paths: readonly string[]): Promise<Discovered[]> {
   const scans: Scans = { columns: new Map(), topics: new TopicScan() };
-  for (const path of files) await scanFile(path, scans);
+  const files = findFiles(paths, null);
+  const engine = new ColumnsEngine();
+  try {
+    for (const path of files) await scanFile(path, scans, engine);
+  } finally {
+    engine.close();
+  }
   const columns = [...scans.columns].filter(([, kind]) => kind === 'number').map(([name]) => name);
   const topics = [...scans.topics.found.values()];
   const headings = columns.map(splitHeading);

@@ -10,6 +10,7 @@ import type { Remembered } from '../exclusions.ts';
 import { channelsOf } from './channels.ts';
 import { ColumnsEngine } from './columns-engine.ts';
 import { findFiles } from './find-files.ts';
+import { iso } from './finding.ts';
 import type { History } from './history.ts';
 import type { Interrupt } from './interrupt.ts';
 import { type LoadedHistory, prepare } from './load.ts';
@@ -20,6 +21,7 @@ import type { OlderFacts, OlderSink } from './older.ts';
 import { type ReadOptions, readShort } from './read.ts';
 import type { LongLimits } from './recent.ts';
 import { type Belongs, digestOfPlain, forgetPlace, identityOf, readPlace } from './saved-place.ts';
+import { SpanWatch } from './span-watch.ts';
 import { checkZone } from './zone.ts';
 
 export type { OlderFacts, OlderSink } from './older.ts';
@@ -52,14 +54,21 @@ export interface LongHistory extends LoadedHistory {
 
 const LIMITS: LongLimits = { longFrom: LONG_FROM, recentTicks: RECENT_TICKS, chunkTicks: CHUNK_TICKS };
 
+/** A history as it was found: whole where it is short, else its newest part. */
+export interface Newest {
+  readonly history: History;
+  readonly older: OlderFacts | null;
+  /** What older readings say of the time that must not teach. */
+  readonly remembered: readonly Remembered[];
+}
+
 /**
  * Reads files, folders and patterns; lays on ticks and surveys.
  *
  * sinkFor      makes the one who learns from what is older; asked only where the history is long, and again where reading
  *              has to begin anew
  * judgedShare  share of the newest part's ticks, at the end, that will judge
- * throws       TrainError 'file' or 'history' as `loadHistory`, and where readings of a long history are too far out of
- *              order; Interrupted where somebody asked to stop, the place saved
+ * throws       as `readNewest`
  */
 export async function loadLong(
   paths: readonly string[],
@@ -68,6 +77,33 @@ export async function loadLong(
   sinkFor: () => OlderSink,
   judgedShare = 0,
 ): Promise<LongHistory> {
+  const { history, older, remembered } = await readNewest(paths, site, options, sinkFor);
+  const done = (): void => {
+    if (options.resumeFile !== undefined) forgetPlace(options.resumeFile);
+  };
+  return { ...prepare(history, site, judgedShare, remembered), older, done };
+}
+
+/** Lets pass what is older: for those who look at the newest part alone. */
+export const LET_PASS: OlderSink = Object.freeze({
+  take: () => {},
+  snapshot: () => new Uint8Array(0),
+  restore: () => {},
+});
+
+/**
+ * Reads files, folders and patterns as they are found.
+ *
+ * sinkFor  as `loadLong`
+ * throws   TrainError 'file' or 'history' as `readHistory`, and where readings of a long history are too far out of order;
+ *          Interrupted where somebody asked to stop, the place saved
+ */
+export async function readNewest(
+  paths: readonly string[],
+  site: Site,
+  options: LongOptions,
+  sinkFor: () => OlderSink = () => LET_PASS,
+): Promise<Newest> {
   if (paths.length === 0)
     throw new TrainError('options', 'history: expected at least one file, got none; name them after --history');
   if (options.zone !== null) checkZone(options.zone);
@@ -76,25 +112,30 @@ export async function loadLong(
   const files = findFiles(paths, site.site);
   const isGoingOn = resumeFile !== undefined && existsSync(resumeFile);
   const engine = new ColumnsEngine(options.spillIn ?? (resumeFile === undefined ? undefined : dirname(resumeFile)));
-  let read: Read;
   try {
-    const short = isGoingOn ? null : await readShort(files, site, options, limits.longFrom, engine);
-    if (short !== null) return { ...prepare(short, site, judgedShare), older: null, done: () => {} };
-    read = await readLong([...new Set(files)], site, { ...options, limits }, sinkFor, engine);
+    const watch = new SpanWatch(site.tickMs, limits.longFrom);
+    const short = isGoingOn ? null : await readShort(files, site, options, watch, engine);
+    if (short !== null) return { history: short, older: null, remembered: [] };
+    return await readLong([...new Set(files)], site, { ...options, limits }, sinkFor, engine);
   } finally {
     engine.close();
   }
-  const done = (): void => {
-    if (resumeFile !== undefined) forgetPlace(resumeFile);
-  };
-  return { ...prepare(read.history, site, judgedShare, read.remembered), older: read.older, done };
 }
 
-/** What came of a reading in long mode. */
-interface Read {
-  readonly history: History;
-  readonly older: OlderFacts | null;
-  readonly remembered: readonly Remembered[];
+/** Values that commands which merely look at a history hold in memory: 128 MB. */
+const HELD_VALUES = 16_000_000;
+
+/** Limits for a command that learns nothing from what is older, and so holds as much as memory allows. */
+export function lookLimits(site: Site): LongLimits {
+  const longFrom = Math.max(LONG_FROM, Math.floor(HELD_VALUES / channelsOf(site).length));
+  return { longFrom, recentTicks: longFrom - 2 * CHUNK_TICKS, chunkTicks: CHUNK_TICKS };
+}
+
+/** What a command that looks at the newest part alone says of the rest; null where there was none. */
+export function olderNote(older: OlderFacts | null, tickMs: number): string | null {
+  if (older === null) return null;
+  const at = (tick: number): string => iso(tick * tickMs);
+  return `This history is long: what is said here is of its newest part, from ${at(older.toTick)} on; ${older.ticks} ticks before that, from ${at(older.fromTick)}, were read past.`;
 }
 
 /** Reads in long mode; Parquet files whose rows turn out to lie too far out of order are sorted in another attempt. */
@@ -104,7 +145,7 @@ async function readLong(
   options: LongOptions & { readonly limits: LongLimits },
   sinkFor: () => OlderSink,
   engine: ColumnsEngine,
-): Promise<Read> {
+): Promise<Newest> {
   const { resumeFile } = options;
   const belongs = resumeFile === undefined ? null : belongsOf(files, site, options);
   const place =
@@ -135,7 +176,7 @@ function belongsOf(
   return { asked, files: files.map(identityOf) };
 }
 
-function readOf(reading: LongReading, site: Site): Read {
+function readOf(reading: LongReading, site: Site): Newest {
   const { recent, merge, times } = reading;
   const fromMs = recent.cutTick * site.tickMs;
   const history: History = {

@@ -17,7 +17,7 @@ import { Gathering } from './gathering.ts';
 import type { FileRead, History } from './history.ts';
 import { type InputFile, inspectFile, readBlocks } from './input-file.ts';
 import { refusal, shown } from './refusal.ts';
-import { SpanWatch } from './span-watch.ts';
+import type { Watch } from './span-watch.ts';
 import { TimeReader } from './times.ts';
 import { checkZone } from './zone.ts';
 
@@ -43,7 +43,7 @@ async function readOne(
   gathering: Gathering,
   times: TimeReader,
   onBytes: (done: number, rows: number) => void,
-  watch: SpanWatch | null,
+  watch: Watch | null,
   engine: ColumnsEngine,
 ): Promise<FileRead> {
   times.nextFile();
@@ -129,7 +129,7 @@ export async function readHistory(files: readonly string[], site: Site, options:
 }
 
 /**
- * As `readHistory`, but null as soon as the history is seen to span more ticks than `mostTicks`.
+ * As `readHistory`, but null as soon as `watch` says that the history is too long to be held.
  *
  * throws  as `readHistory`
  */
@@ -137,11 +137,11 @@ export async function readShort(
   files: readonly string[],
   site: Site,
   options: ReadOptions,
-  mostTicks: number,
+  watch: Watch,
   engine: ColumnsEngine,
 ): Promise<History | null> {
   try {
-    return await readWatched(files, site, options, new SpanWatch(site.tickMs, mostTicks), engine);
+    return await readWatched(files, site, options, watch, engine);
   } catch (cause) {
     if (cause instanceof TooLong) return null;
     throw cause;
@@ -152,7 +152,7 @@ async function readWatched(
   paths: readonly string[],
   site: Site,
   options: ReadOptions,
-  watch: SpanWatch | null,
+  watch: Watch | null,
   engine: ColumnsEngine,
 ): Promise<History> {
   if (paths.length === 0)

@@ -6,16 +6,23 @@ import { DEFAULT_RESIDUAL_BYTES_PER_DAY, DEFAULT_ROOT, type Signal, type Site } 
 import { TrainError } from '../errors.ts';
 import type { Progress } from '../progress.ts';
 import { cadenceOf, suggestTick } from './cadence.ts';
+import { ColumnsEngine } from './columns-engine.ts';
 import { type Discovered, discoverSignals } from './discover.ts';
+import { findFiles } from './find-files.ts';
 import { counted, figure, lengthOf } from './finding.ts';
+import type { Gathering } from './gathering.ts';
 import type { ChannelReadings, History } from './history.ts';
+import { LET_PASS, olderNote, readNewest } from './long.ts';
 import { plausibleSpan } from './plausible.ts';
-import { readHistory } from './read.ts';
+import { type ReadOptions, readShort } from './read.ts';
 import { type FoundLattice, findLattice } from './resolution.ts';
+import { SizeWatch } from './span-watch.ts';
 import { timeOrder } from './ticks.ts';
 import { fixedZoneName } from './zone.ts';
 
 const DAY_MS = 86_400_000;
+/** Values that a draft is made from in memory, 32 MB. */
+const MOST_VALUES = 4_000_000;
 /** A day ahead where that many ticks make one: fewer teach little of a day, more cost bundle and sharpness. */
 const DAY_HORIZON = [24, 144] as const;
 const DEFAULT_HORIZON = 24;
@@ -30,6 +37,8 @@ export interface SiteDraft {
   readonly undeclared: Site;
   readonly history: History;
   readonly comments: Readonly<Record<string, string>>;
+  /** Says that only the newest part of a long history was looked at; null where all was. */
+  readonly note: string | null;
 }
 
 /** What the readings cannot tell of a site. */
@@ -39,6 +48,8 @@ export interface DraftOptions {
   /** Zone of times that carry none; null: they are refused. */
   readonly zone: string | null;
   readonly progress?: Progress;
+  /** Values held at most before only the newest part is looked at; 4 million when absent. */
+  readonly mostValues?: number;
 }
 
 function signalOf(found: Discovered, siteName: string): Signal {
@@ -153,8 +164,9 @@ export async function draftSite(files: readonly string[], options: DraftOptions)
     exclude: [],
   };
   const progress = options.progress === undefined ? {} : { progress: options.progress };
-  const history = await readHistory(files, rough, { zone: options.zone, requireZone: true, ...progress });
-  const intervals = history.channels.map((channel) => cadenceOf(channel, timeOrder(channel.times)).intervalMs);
+  const reading = { zone: options.zone, requireZone: true, ...progress };
+  const { history, note } = await readForDraft(files, rough, reading, options.mostValues ?? MOST_VALUES);
+  const intervals = intervalsOf(history.channels);
   if (!intervals.some((ms) => ms > 0))
     throw new TrainError(
       'history',
@@ -168,5 +180,33 @@ export async function draftSite(files: readonly string[], options: DraftOptions)
     latenessMs: Math.min(Math.ceil(tickMs / 10), MOST_LATENESS_MS),
     signals: signals.map((signal, c) => filledIn(signal, history.channels[c] as ChannelReadings)),
   };
-  return { site, undeclared: { ...site, signals }, history, comments: commentsOf(site, history, intervals) };
+  const comments = commentsOf(site, history, intervals);
+  if (note !== null) comments[''] = `${comments['']}\n${note}`;
+  return { site, undeclared: { ...site, signals }, history, comments, note };
+}
+
+/** The whole history where memory holds it; else its newest part, cut by the tick that its first readings suggest. */
+async function readForDraft(
+  files: readonly string[],
+  rough: Site,
+  options: ReadOptions,
+  mostValues: number,
+): Promise<{ readonly history: History; readonly note: string | null }> {
+  const watch = new SizeWatch(mostValues);
+  const engine = new ColumnsEngine();
+  try {
+    const whole = await readShort(findFiles(files, null), rough, options, watch, engine);
+    if (whole !== null) return { history: whole, note: null };
+  } finally {
+    engine.close();
+  }
+  const names = rough.signals.map(({ name }) => name);
+  const tickMs = suggestTick(intervalsOf((watch.gathered as Gathering).channels(names)));
+  const { history, older } = await readNewest(files, { ...rough, tickMs }, options, () => LET_PASS);
+  return { history, note: olderNote(older, tickMs) };
+}
+
+/** Usual interval of each channel, ms. */
+function intervalsOf(channels: readonly ChannelReadings[]): number[] {
+  return channels.map((channel) => cadenceOf(channel, timeOrder(channel.times)).intervalMs);
 }

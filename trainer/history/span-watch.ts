@@ -1,8 +1,31 @@
-/** Tells as early as can be that a history spans more ticks than were to be held, looking at each reading once. */
+/** Tells as early as can be that a history is more than was to be held in memory. */
 import type { Block, Gathering } from './gathering.ts';
 
-/** Watches what a reader gathers. */
-export class SpanWatch {
+/** Looks at what a reader gathers. */
+export interface Watch {
+  /** True once it is too much. */
+  isPassed(gathering: Gathering): boolean;
+}
+
+/** Passed by a number of values; keeps what was gathered until then. */
+export class SizeWatch implements Watch {
+  readonly #mostValues: number;
+  gathered: Gathering | null = null;
+
+  constructor(mostValues: number) {
+    this.#mostValues = mostValues;
+  }
+
+  isPassed(gathering: Gathering): boolean {
+    this.gathered = gathering;
+    let values = 0;
+    for (const block of gathering.blocks) values += block.times.length * (1 + block.values.filter(Boolean).length);
+    return values > this.#mostValues;
+  }
+}
+
+/** Passed by a span of ticks; looks at each reading once. */
+export class SpanWatch implements Watch {
   readonly #tickMs: number;
   readonly #mostTicks: number;
   readonly #seen = new Map<Block, number>();
