@@ -1,5 +1,6 @@
 /** `stillwell condense`: a sensor of thousands of numbers becomes a few signals that can be fitted like any other. */
 import { createHash } from 'node:crypto';
+import { existsSync, readdirSync, rmdirSync } from 'node:fs';
 import { freemem } from 'node:os';
 import { join } from 'node:path';
 import { ADVISORY, MIN_TICK_MS, parseInstant } from '@stillwell/protocol';
@@ -92,14 +93,21 @@ async function run(options: CondenseOptions): Promise<void> {
   const everyMs = options.every ?? (shape.tickMs >= MIN_TICK_MS ? shape.tickMs : DEFAULT_EVERY_MS);
   if (everyMs < shape.tickMs)
     throw new TrainError('options', `--every: expected at least the ${shape.tickMs} ms between frames, got ${everyMs}`);
-  openFolder(options.out);
-  const reading = createProgress('reading', 'frames');
-  const frames = await projectFrames(recording, shape, options.out, reading.update);
-  reading.end();
+  const isNew = openFolder(options.out);
   try {
-    finish(options, known, shape, recording, frames, everyMs, await import('../wide/condense-page.ts'));
-  } finally {
-    frames.close();
+    const page = await import('../wide/condense-page.ts');
+    const reading = createProgress('reading', 'frames');
+    const frames = await projectFrames(recording, shape, options.out, reading.update);
+    reading.end();
+    try {
+      finish(options, known, shape, recording, frames, everyMs, page);
+    } finally {
+      frames.close();
+    }
+  } catch (cause) {
+    // A refusal leaves nothing behind, not even an empty folder.
+    if (isNew && readdirSync(options.out).length === 0) rmdirSync(options.out);
+    throw cause;
   }
 }
 
@@ -236,10 +244,13 @@ function requireMemory(shape: CondenserShape, rank: number): void {
     );
 }
 
-function openFolder(path: string): void {
+/** Makes it where there is none; true then. */
+function openFolder(path: string): boolean {
   if (path === '') throw new TrainError('file', '--out: expected a path, got an empty one');
+  const isNew = !existsSync(path);
   try {
     makeFolder(path);
+    return isNew;
   } catch (cause) {
     throw unwritable(path, cause as Error);
   }

@@ -52,7 +52,7 @@ export class RowFold implements Fold {
     this.#wide = kernels.alloc64((most + 1) * this.#capacity);
     this.#w = kernels.alloc64((most + 1) * (most + 1));
     this.#products = kernels.alloc64(most * most);
-    this.#along = new Float64Array(this.#capacity);
+    this.#along = kernels.alloc64(this.#capacity);
     this.#p = new Float64Array(most);
     this.#z = new Float64Array(most + 1);
     this.#d = new Float64Array(most + 1);
@@ -63,7 +63,9 @@ export class RowFold implements Fold {
   /** Bytes that such a fold takes in the kernels' memory. */
   static bytes(columns: number, most: number): number {
     const capacity = most + RowFold.SPARE;
-    return TallRows.bytes(capacity, most, columns) + 8 * ((2 * most + 1) * capacity + 2 * (most + 1) ** 2) + 1024;
+    return (
+      TallRows.bytes(capacity, most, columns) + 8 * ((2 * most + 1) * capacity + capacity + 2 * (most + 1) ** 2) + 1024
+    );
   }
 
   rowAt(_: number): Float64Array {
@@ -118,7 +120,7 @@ export class RowFold implements Fold {
     for (let k = 0; k < this.rank; k++) {
       for (let j = 0; j < width; j++) along[j] += part[k] * mix[k * width + j];
     }
-    this.#rows.takeFrom(width, along, width);
+    this.#rows.takeAway(along, width, width, 1);
     return this.#rows.square(width);
   }
 

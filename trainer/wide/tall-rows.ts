@@ -60,8 +60,7 @@ export class TallRows {
 
   /** The same for one row with the first `count`. */
   dots(a: number, count: number, out: Float64Array): void {
-    const row = this.#each[a];
-    for (let j = 0; j < count; j++) out[j] = this.#kernels.dot(row, this.#each[j], this.columns);
+    this.#kernels.multiplyTransposed(out, this.#each[a], this.#all, 1, this.columns, count);
   }
 
   /** The square of one row's length. */
@@ -94,12 +93,6 @@ export class TallRows {
    */
   takeAway(coefficients: Float64Array, from: number, at: number, count: number): void {
     this.#kernels.multiplyTake(this.#span(at, count), coefficients, this.#all, count, from, this.columns);
-  }
-
-  /** The same for one row. */
-  takeFrom(at: number, coefficients: Float64Array, from: number): void {
-    const row = this.#each[at];
-    for (let j = 0; j < from; j++) this.#kernels.axpy(row, -coefficients[j], this.#each[j], this.columns);
   }
 
   #span(at: number, count: number): Float64Array {
