@@ -4,6 +4,7 @@
  */
 import { z } from 'zod';
 import { BUNDLE_KINDS, type BundleKind } from './bundle.ts';
+import { parseDuration } from './duration.ts';
 import { deepFreeze } from './freeze.ts';
 import { listFaults, showValue } from './issue.ts';
 import { nearestName } from './nearest.ts';
@@ -16,6 +17,8 @@ export interface FleetEntryOptions {
   readonly until?: string;
   readonly learnShare?: number;
   readonly calibrateShare?: number;
+  /** ms */
+  readonly halfLife?: number;
   readonly maxBytes?: number;
   readonly kind?: BundleKind | 'auto';
   readonly useAll?: boolean;
@@ -64,6 +67,9 @@ const whole = (least: number, most: number) =>
 const share = checked('a share between 0 and 1', (value) =>
   typeof value === 'number' && value > 0 && value < 1 ? value : undefined,
 );
+const duration = checked('a duration such as "180d"', (value) =>
+  typeof value === 'string' ? (parseDuration(value) ?? undefined) : undefined,
+);
 const truth = checked('true or false', (value) => (typeof value === 'boolean' ? value : undefined));
 const history = checked('a path or pattern of history files, or a list of them', (value) => {
   const list = Array.isArray(value) ? value : [value];
@@ -86,6 +92,7 @@ const entrySchema = z.strictObject({
   until: text('a time such as "2026-03-01"').nullish(),
   learn_share: share.nullish(),
   calibrate_share: share.nullish(),
+  half_life: duration.nullish(),
   max_bytes: whole(2048, 65_536).nullish(),
   kind: kind.nullish(),
   use_all: truth.nullish(),
@@ -105,6 +112,7 @@ const optionsOf = (entry: z.output<typeof entrySchema>): FleetEntryOptions => {
     until: entry.until,
     learnShare: entry.learn_share,
     calibrateShare: entry.calibrate_share,
+    halfLife: entry.half_life,
     maxBytes: entry.max_bytes,
     kind: entry.kind,
     useAll: entry.use_all,

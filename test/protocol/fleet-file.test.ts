@@ -12,6 +12,7 @@ describe('a fleet file', () => {
     history: [a.csv, b.csv.gz]
     use_all: true
     learn_share: 0.5
+    half_life: 30d
     kind: dense
     override: new pump
 `);
@@ -20,7 +21,7 @@ describe('a fleet file', () => {
       {
         site: 'south.yaml',
         history: ['a.csv', 'b.csv.gz'],
-        options: { useAll: true, learnShare: 0.5, kind: 'dense', override: 'new pump' },
+        options: { useAll: true, learnShare: 0.5, halfLife: 30 * 86_400_000, kind: 'dense', override: 'new pump' },
         line: 4,
       },
     ]);
