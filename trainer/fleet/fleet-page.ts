@@ -43,9 +43,10 @@ details ul { margin: .3rem 0; padding-left: 1.2rem; white-space: normal; min-wid
 function summary(results: readonly FleetResult[], fitted: readonly SiteFacts[]): string {
   const skilled = fitted.filter(({ has_skill }) => has_skill).length;
   const failed = results.length - fitted.length;
+  const without = fitted.length - skilled;
   const words = [
-    `${counted(skilled, 'site')} of ${results.length} forecast better than the obvious guesses`,
-    ...(fitted.length > skilled ? [`${fitted.length - skilled} do not and cannot be sealed as they are`] : []),
+    `At ${skilled} of ${counted(results.length, 'site')} forecasts beat the obvious guesses`,
+    ...(without > 0 ? [`at ${without} they do not, which cannot be sealed as they are`] : []),
     ...(failed > 0 ? [`${failed} could not be fitted`] : []),
   ].join('; ');
   return `<p class="verdict${failed > 0 || skilled < fitted.length ? ' bad' : ''}"><strong>${words}.</strong></p>`;

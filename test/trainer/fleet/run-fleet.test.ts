@@ -31,6 +31,7 @@ function worksOf(fleet: string, out: string, seed = 1, names: readonly string[] 
         out: join(out, label),
         zone: null,
         span: {},
+        halfLifeTicks: null,
         options: { ...OPTIONS, seed },
       },
     },
