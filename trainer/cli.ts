@@ -5,37 +5,25 @@
  */
 import { ProtocolError } from '@stillwell/protocol';
 import { Command, CommanderError } from 'commander';
-import { condenseCommand } from './commands/condense.ts';
-import { deskCommand } from './commands/desk.ts';
-import { fitCommand } from './commands/fit.ts';
-import { hindcastCommand } from './commands/hindcast.ts';
-import { keysCommand } from './commands/keys.ts';
-import { refitCommand } from './commands/refit.ts';
-import { rollCommand } from './commands/roll.ts';
-import { sealCommand } from './commands/seal.ts';
-import { showCommand } from './commands/show.ts';
-import { siteCommand } from './commands/site.ts';
-import { sizeCommand } from './commands/size.ts';
-import { surveyCommand } from './commands/survey.ts';
-import { watchCommand } from './commands/watch.ts';
 import { TrainError } from './errors.ts';
 import { INTERRUPTED_CODE, Interrupted } from './history/interrupt.ts';
 
-const commands: readonly (() => Command)[] = [
-  keysCommand,
-  sealCommand,
-  showCommand,
-  siteCommand,
-  condenseCommand,
-  surveyCommand,
-  sizeCommand,
-  fitCommand,
-  hindcastCommand,
-  rollCommand,
-  watchCommand,
-  deskCommand,
-  refitCommand,
-];
+/** In the order of the help text. Each is loaded only when it is asked for: all of them take a quarter of a second. */
+const commands: Readonly<Record<string, () => Promise<Command>>> = {
+  keys: async () => (await import('./commands/keys.ts')).keysCommand(),
+  seal: async () => (await import('./commands/seal.ts')).sealCommand(),
+  show: async () => (await import('./commands/show.ts')).showCommand(),
+  site: async () => (await import('./commands/site.ts')).siteCommand(),
+  condense: async () => (await import('./commands/condense.ts')).condenseCommand(),
+  survey: async () => (await import('./commands/survey.ts')).surveyCommand(),
+  size: async () => (await import('./commands/size.ts')).sizeCommand(),
+  fit: async () => (await import('./commands/fit.ts')).fitCommand(),
+  hindcast: async () => (await import('./commands/hindcast.ts')).hindcastCommand(),
+  roll: async () => (await import('./commands/roll.ts')).rollCommand(),
+  watch: async () => (await import('./commands/watch.ts')).watchCommand(),
+  desk: async () => (await import('./commands/desk.ts')).deskCommand(),
+  refit: async () => (await import('./commands/refit.ts')).refitCommand(),
+};
 
 const program = new Command('stillwell')
   .description('Learns predictive-state models from site histories, seals them, rolls them out and collects residuals.')
@@ -43,7 +31,11 @@ const program = new Command('stillwell')
   .configureOutput({ outputError: (text, write) => write(usageLine(text)) })
   .enablePositionalOptions()
   .exitOverride();
-for (const command of commands) program.addCommand(adopt(command(), program));
+// Help, a misspelt name and anything else that is no command's name wants them all.
+const name = process.argv[2] ?? '';
+const asked = Object.hasOwn(commands, name) ? commands[name] : undefined;
+const wanted = asked === undefined ? Object.values(commands) : [asked];
+for (const make of wanted) program.addCommand(adopt(await make(), program));
 
 // Whoever reads our output may have seen enough (`stillwell show … | head`): no error of ours.
 process.stdout.on('error', (error: NodeJS.ErrnoException) => {
