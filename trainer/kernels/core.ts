@@ -64,7 +64,16 @@ export interface FourierLoops {
 
 /** Products of a matrix and a vector, which no packing would pay for. */
 export interface ThinLoops {
-  columnSums(c: Pointer, a: Pointer, stride: number, x: Pointer, m: number, steps: number, isTaken: number): void;
+  columnSums(
+    c: Pointer,
+    a: Pointer,
+    stride: number,
+    x: Pointer,
+    m: number,
+    steps: number,
+    isTaken: number,
+    sums: Pointer,
+  ): void;
   rowDots(
     c: Pointer,
     cStride: number,
@@ -88,5 +97,10 @@ export interface VectorLoops {
   hadamard32(x: Pointer, n: number): void;
 }
 
+/** Small symmetric eigenproblems; 0, or 1 where a value did not settle. */
+export interface SymmetricLoops {
+  diagonalise64(z: Pointer, d: Pointer, work: Pointer, n: number): number;
+}
+
 /** All of them. */
-export type Core = ProductLoops & TriangularLoops & FourierLoops & VectorLoops & ThinLoops;
+export type Core = ProductLoops & TriangularLoops & FourierLoops & VectorLoops & ThinLoops & SymmetricLoops;

@@ -11,8 +11,10 @@ import { factorTall } from './orthogonal.ts';
 import { addProduct, type Factor, mirrorLower, PANEL_BYTES } from './products.ts';
 import { scalarFourier } from './scalar-fourier.ts';
 import { scalarProducts } from './scalar-products.ts';
+import { scalarSymmetric } from './scalar-symmetric.ts';
 import { scalarTriangular } from './scalar-triangular.ts';
 import { scalarVectors } from './scalar-vectors.ts';
+import { symmetricBytes, symmetricRows } from './symmetric.ts';
 import { BLOCK_BYTES, factorLower, lowerSolve, upperSolve } from './triangular.ts';
 import { webAssembly } from './web-assembly.ts';
 
@@ -50,6 +52,11 @@ export interface Kernels {
   solveUpper(l: Float64Array, b: Float64Array, n: number, m: number): void;
   /** A = Q R of a tall block, A overwritten with Q, the diagonal of R not negative. */
   qr(a: Float64Array, rows: number, columns: number, r: Float64Array): void;
+  /**
+   * Eigenvectors of a small symmetric A as rows of A itself, values in d (n), falling; only the lower triangle is read. False
+   * where a value does not settle. 8 n (n + 4) bytes of scratch.
+   */
+  symmetricEigen(a: Float64Array, n: number, d: Float64Array): boolean;
   /** X_k = Σ x_t exp(-2πi kt/n) in place; the inverse divides by n. n a power of two, 16 n bytes of scratch and of tables. */
   fft(re: Float64Array, im: Float64Array, n: number, isInverse?: boolean): void;
   /** The first n/2 + 1 values of the transform of n real ones. */
@@ -99,7 +106,13 @@ export function createKernels(bytes: number, mode: 'simd' | 'scalar' = 'simd'): 
 }
 
 function scalarCore(buffer: ArrayBuffer): Core {
-  return { ...scalarProducts(buffer), ...scalarTriangular(buffer), ...scalarFourier(buffer), ...scalarVectors(buffer) };
+  return {
+    ...scalarProducts(buffer),
+    ...scalarTriangular(buffer),
+    ...scalarFourier(buffer),
+    ...scalarVectors(buffer),
+    ...scalarSymmetric(buffer),
+  };
 }
 
 class MemoryKernels implements Kernels {
@@ -195,6 +208,15 @@ class MemoryKernels implements Kernels {
     this.#at(r, columns * columns);
     const work = { core: this.#core, arena: this.#arena, scratch: this.#scratch, turned: this.#turned };
     factorTall(work, a, r.subarray(0, columns * columns), rows, columns);
+  }
+
+  symmetricEigen(a: Float64Array, n: number, d: Float64Array): boolean {
+    this.#at(a, n * n);
+    this.#at(d, n);
+    const mark = this.#arena.mark();
+    const isSettled = symmetricRows(this.#core, a, d, this.#arena.takeRaw(symmetricBytes(n)), n);
+    this.#arena.release(mark);
+    return isSettled;
   }
 
   fft(re: Float64Array, im: Float64Array, n: number, isInverse = false): void {

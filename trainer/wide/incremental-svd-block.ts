@@ -6,7 +6,6 @@
  */
 import { createKernels, type Kernels } from '../kernels/kernels.ts';
 import type { Fold } from './incremental-svd.ts';
-import { diagonalise } from './small-eigen.ts';
 import { measureOrthogonality, ORTHOGONALITY_BOUND, orthonormaliseRows } from './tall-orthonormal.ts';
 import { TallRows } from './tall-rows.ts';
 
@@ -66,7 +65,7 @@ export class BlockFold implements Fold {
     this.#taken = kernels.alloc64(most * most);
     this.#turn = kernels.alloc64(most * size);
     this.#squares = new Float64Array(block);
-    this.#d = new Float64Array(size);
+    this.#d = kernels.alloc64(size);
     this.#e = new Float64Array(size);
     this.#pivots = new Int32Array(block);
     this.values = new Float64Array(most);
@@ -75,7 +74,7 @@ export class BlockFold implements Fold {
   /** Bytes that such a fold takes in the kernels' memory. */
   static bytes(columns: number, most: number, block: number): number {
     const size = most + block;
-    return TallRows.bytes(size, most, columns) + 8 * (size * (size + most + 3 * block) + (most + block) ** 2) + 1024;
+    return TallRows.bytes(size, most, columns) + 8 * (size * (2 * size + 5 + most + 3 * block) + size ** 2) + 1024;
   }
 
   rowAt(i: number): Float64Array {
@@ -137,7 +136,8 @@ export class BlockFold implements Fold {
     small.fill(0, 0, size * size);
     for (let c = 0; c < k; c++) small[c * size + c] = this.values[c] * this.values[c];
     this.#kernels.gramAdd(small, joint, count, size);
-    diagonalise(small, size, this.#d, this.#e);
+    if (!this.#kernels.symmetricEigen(small, size, this.#d))
+      throw new RangeError('an eigenvalue of the running decomposition did not settle');
     this.rank = Math.min(this.#most, size);
     for (let c = 0; c < this.rank; c++) this.values[c] = Math.sqrt(Math.max(0, this.#d[c]));
     for (let c = this.rank; c < size; c++) this.discarded += Math.max(0, this.#d[c]);

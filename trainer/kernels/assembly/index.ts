@@ -2,5 +2,6 @@
 export * from './fourier';
 export * from './hadamard';
 export * from './products';
+export * from './symmetric';
 export * from './triangular';
 export * from './vectors';

@@ -1,38 +1,45 @@
-/**
- * Eigenvalues and vectors of a small symmetric matrix in place, without allocating: called once a block of rows, where the
- * library's answer costs more than the long products beside it. Vectors are kept as rows, so that each plane rotation runs
- * over two contiguous rows. Not for matrices with entries that are not finite: the caller has refused them.
- */
+/** The loops of assembly/symmetric.ts in plain numbers; see core.ts. */
+import type { SymmetricLoops } from './core.ts';
 
-/** Most sweeps for one eigenvalue; QL steps take two or three. */
+/** Most steps for one eigenvalue; two or three are usual. */
 const MOST_STEPS = 60;
 
 /**
- * Diagonalises a symmetric matrix, A = Z' diag(d) Z, eigenvalues falling.
+ * The loops over one memory.
  *
- * shapes  z (n × n) symmetric on entry, rows are eigenvectors on return; d (n) eigenvalues, e (n) scratch
+ * shapes  as core.ts has them
  * units   any
- * throws  RangeError if an eigenvalue does not settle, which happens only to entries that are not finite
- * source  Householder reduction and implicit QL: Wilkinson & Reinsch, Handbook for Automatic Computation, Linear Algebra
- *         (1971), contributions II/2 and II/4; Golub & Van Loan, Matrix Computations, 4th ed. (2013), section 8.3
- * cost    about 4 n³ multiplications
+ * throws  nothing
+ * source  assembly/symmetric.ts, lane by lane
+ * cost    about 4 n³ multiplications, half the speed of the lanes
  */
-export function diagonalise(z: Float64Array, n: number, d: Float64Array, e: Float64Array): void {
-  tridiagonalise(z, n, d, e);
-  accumulate(z, n, d);
-  implicitQl(z, n, d, e);
-  sortFalling(z, n, d);
+export function scalarSymmetric(buffer: ArrayBuffer): SymmetricLoops {
+  return {
+    diagonalise64(zAt, dAt, workAt, n) {
+      const z = new Float64Array(buffer, zAt, n * n);
+      const d = new Float64Array(buffer, dAt, n);
+      const work = new Float64Array(buffer, workAt, n * (n + 4));
+      const e = work.subarray(0, n);
+      const turns = work.subarray(n, 3 * n);
+      const halves = work.subarray(3 * n, 4 * n);
+      const kept = work.subarray(4 * n);
+      tridiagonalise(z, n, halves, e);
+      for (let i = 0; i < n; i++) d[i] = z[i * n + i];
+      kept.set(z);
+      accumulate(z, kept, n, halves);
+      return implicitQl(z, n, d, e, turns);
+    },
+  };
 }
 
-/** Lower triangle to tridiagonal form; row i of z keeps the reflection of step i, d[i] its half square. */
-function tridiagonalise(z: Float64Array, n: number, d: Float64Array, e: Float64Array): void {
+function tridiagonalise(z: Float64Array, n: number, halves: Float64Array, e: Float64Array): void {
   for (let i = n - 1; i > 0; i--) {
     const row = i * n;
     let scale = 0;
     for (let k = 0; k < i; k++) scale += Math.abs(z[row + k]);
     if (i === 1 || scale === 0) {
       e[i] = z[row + i - 1];
-      d[i] = 0;
+      halves[i] = 0;
       continue;
     }
     let h = 0;
@@ -46,9 +53,9 @@ function tridiagonalise(z: Float64Array, n: number, d: Float64Array, e: Float64A
     h -= f * g;
     z[row + i - 1] = f - g;
     reflect(z, n, i, h, e);
-    d[i] = h;
+    halves[i] = h;
   }
-  d[0] = 0;
+  halves[0] = 0;
   e[0] = 0;
 }
 
@@ -59,12 +66,21 @@ function reflect(z: Float64Array, n: number, i: number, h: number, e: Float64Arr
   for (let j = 0; j < i; j++) {
     const at = j * n;
     const u = z[row + j];
-    let sum = z[at + j] * u;
-    for (let k = 0; k < j; k++) {
+    let s0 = 0;
+    let s1 = 0;
+    let k = 0;
+    for (; k + 1 < j; k += 2) {
+      s0 += z[at + k] * z[row + k];
+      s1 += z[at + k + 1] * z[row + k + 1];
+      e[k] += z[at + k] * u;
+      e[k + 1] += z[at + k + 1] * u;
+    }
+    let sum = s0 + s1;
+    if (k < j) {
       sum += z[at + k] * z[row + k];
       e[k] += z[at + k] * u;
     }
-    e[j] += sum;
+    e[j] += sum + z[at + j] * u;
   }
   let f = 0;
   for (let j = 0; j < i; j++) {
@@ -81,41 +97,35 @@ function reflect(z: Float64Array, n: number, i: number, h: number, e: Float64Arr
   }
 }
 
-/** The product of the reflections, transposed into rows; d becomes the diagonal. */
-function accumulate(z: Float64Array, n: number, d: Float64Array): void {
-  const diagonal = d.slice(0, n);
-  const reflections = z.slice(0, n * n);
-  for (let i = 0; i < n; i++) d[i] = reflections[i * n + i];
-  z.fill(0, 0, n * n);
+/** The product of the reflections, transposed into rows. */
+function accumulate(z: Float64Array, kept: Float64Array, n: number, halves: Float64Array): void {
+  z.fill(0);
   for (let i = 0; i < n; i++) z[i * n + i] = 1;
-  // Q = P(n−1) … P(1); rows of Q' are what QL turns: each reflection changes the first i columns of every row below i.
   for (let i = 1; i < n; i++) {
-    const h = diagonal[i];
-    if (h === 0) continue;
-    const u = i * n;
-    for (let j = 0; j < i; j++) {
-      const at = j * n;
-      // Sums of their own, since each addition would wait for the last.
-      let g0 = 0;
-      let g1 = 0;
-      let g2 = 0;
-      let g3 = 0;
-      let k = 0;
-      for (; k + 3 < i; k += 4) {
-        g0 += z[at + k] * reflections[u + k];
-        g1 += z[at + k + 1] * reflections[u + k + 1];
-        g2 += z[at + k + 2] * reflections[u + k + 2];
-        g3 += z[at + k + 3] * reflections[u + k + 3];
-      }
-      for (; k < i; k++) g0 += z[at + k] * reflections[u + k];
-      const g = (g0 + g1 + (g2 + g3)) / h;
-      for (k = 0; k < i; k++) z[at + k] -= g * reflections[u + k];
-    }
+    if (halves[i] === 0) continue;
+    for (let j = 0; j < i; j++) reflectRow(z, j * n, kept, i * n, halves[i], i);
   }
 }
 
-function implicitQl(z: Float64Array, n: number, d: Float64Array, e: Float64Array): void {
-  const turns = new Float64Array(2 * n);
+function reflectRow(z: Float64Array, at: number, kept: Float64Array, u: number, h: number, n: number): void {
+  let s0 = 0;
+  let s1 = 0;
+  let s2 = 0;
+  let s3 = 0;
+  let k = 0;
+  for (; k + 3 < n; k += 4) {
+    s0 += z[at + k] * kept[u + k];
+    s1 += z[at + k + 1] * kept[u + k + 1];
+    s2 += z[at + k + 2] * kept[u + k + 2];
+    s3 += z[at + k + 3] * kept[u + k + 3];
+  }
+  let sum = s0 + s2 + (s1 + s3);
+  for (; k < n; k++) sum += z[at + k] * kept[u + k];
+  const g = sum / h;
+  for (k = 0; k < n; k++) z[at + k] -= g * kept[u + k];
+}
+
+function implicitQl(z: Float64Array, n: number, d: Float64Array, e: Float64Array, turns: Float64Array): number {
   for (let i = 1; i < n; i++) e[i - 1] = e[i];
   e[n - 1] = 0;
   for (let l = 0; l < n; l++) {
@@ -126,10 +136,11 @@ function implicitQl(z: Float64Array, n: number, d: Float64Array, e: Float64Array
         if (Math.abs(e[m]) <= Number.EPSILON * size) break;
       }
       if (m === l) break;
-      if (step === MOST_STEPS) throw new RangeError('an eigenvalue of a small matrix did not settle');
+      if (step === MOST_STEPS) return 1;
       turnRows(z, n, sweep(d, e, l, m, turns), m, turns);
     }
   }
+  return 0;
 }
 
 /** One implicit QL step on rows l … m; turns hold cosine and sine of rows i and i + 1, and the last i is given back. */
@@ -208,20 +219,5 @@ function turnRows(z: Float64Array, n: number, l: number, m: number, turns: Float
       a = turns[2 * i] * p - turns[2 * i + 1] * a;
     }
     z[at] = a;
-  }
-}
-
-/** Falling order; rows change places with their values. */
-function sortFalling(z: Float64Array, n: number, d: Float64Array): void {
-  for (let i = 0; i < n - 1; i++) {
-    let k = i;
-    for (let j = i + 1; j < n; j++) if (d[j] > d[k]) k = j;
-    if (k === i) continue;
-    [d[i], d[k]] = [d[k], d[i]];
-    for (let c = 0; c < n; c++) {
-      const held = z[i * n + c];
-      z[i * n + c] = z[k * n + c];
-      z[k * n + c] = held;
-    }
   }
 }
