@@ -47,8 +47,8 @@ export function addProduct(
   options: { isLower?: boolean; isTaken?: boolean } = {},
 ): void {
   const isLower = options.isLower === true;
-  if (n === 1 && addThin(core, c, stride, a, b, m, steps, options.isTaken)) return;
-  if (m === 1 && addThin(core, c, 1, b, a, n, steps, options.isTaken)) return;
+  if (n === 1 && addThin(core, scratch, c, stride, a, b, m, steps, options.isTaken)) return;
+  if (m === 1 && addThin(core, scratch, c, 1, b, a, n, steps, options.isTaken)) return;
   if (!isLower && isTurned(a, b, m, n, steps))
     addPanels(core, scratch, c, 1, stride, b, a, n, m, steps, isLower, options.isTaken);
   else addPanels(core, scratch, c, stride, 1, a, b, m, n, steps, isLower, options.isTaken);
@@ -73,6 +73,7 @@ function isDirect(a: Factor, m: number): boolean {
 /** C += A x without packing; false where the parts do not lie side by side. */
 function addThin(
   core: ThinLoops,
+  scratch: Pointer,
   c: Pointer,
   stride: number,
   a: Factor,
@@ -90,7 +91,7 @@ function addThin(
   if (a.rowStride !== 1 || stride !== 1) return false;
   for (let t = 0; t < steps; t += STEPS) {
     const from = a.at + 8 * t * a.stepStride;
-    core.columnSums(c, from, a.stepStride, x.at + 8 * t, m, Math.min(STEPS, steps - t), sign);
+    core.columnSums(c, from, a.stepStride, x.at + 8 * t, m, Math.min(STEPS, steps - t), sign, scratch);
   }
   return true;
 }

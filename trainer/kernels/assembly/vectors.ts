@@ -113,16 +113,66 @@ const SINE_5: f32 = 0.008333017118275166;
 const SINE_7: f32 = -0.00019806614727713168;
 const SINE_9: f32 = 2.6000548132287804e-6;
 
-/** c += A'x, or -=, over `steps` rows of A (m columns): each sum in the order of the rows, then added once. */
-export function columnSums(c: usize, a: usize, stride: i32, x: usize, m: i32, steps: i32, isTaken: i32): void {
+/**
+ * c += A'x, or -=, over `steps` rows of A (m columns): each sum in the order of the rows, then added once. Long rows are read
+ * in runs of 2048 columns, their sums kept at `sums` meanwhile.
+ */
+export function columnSums(
+  c: usize,
+  a: usize,
+  stride: i32,
+  x: usize,
+  m: i32,
+  steps: i32,
+  isTaken: i32,
+  sums: usize,
+): void {
   const next = (<usize>stride) << 3;
   let j = 0;
+  for (; m - j >= RUN; j += RUN, c += RUN << 3, a += RUN << 3) runSums(c, a, next, x, steps, isTaken, sums);
   for (; j + 7 < m; j += 8, c += 64, a += 64) eightSums(c, a, next, x, steps, isTaken);
   for (; j < m; j++, c += 8, a += 8) {
     let sum: f64 = 0;
     let from = a;
     for (let t: usize = 0; t < <usize>steps; t++, from += next) sum += f64.load(from) * f64.load(x + (t << 3));
     f64.store(c, f64.load(c) + (isTaken ? -sum : sum));
+  }
+}
+
+const RUN: i32 = 2048;
+
+function runSums(c: usize, a: usize, next: usize, x: usize, steps: i32, isTaken: i32, sums: usize): void {
+  const end = sums + (RUN << 3);
+  for (let at = sums; at < end; at += 16) v128.store(at, f64x2.splat(0));
+  let t = 0;
+  for (; t + 3 < steps; t += 4, x += 32, a += next << 2) fourRows(a, next, x, sums, end);
+  for (; t < steps; t++, x += 8, a += next) {
+    const f = v128.load_splat<f64>(x);
+    for (let at = sums, from = a; at < end; at += 16, from += 16) {
+      v128.store(at, f64x2.add(v128.load(at), f64x2.mul(v128.load(from), f)));
+    }
+  }
+  for (let at = sums; at < end; at += 16, c += 16) {
+    const sum = v128.load(at);
+    v128.store(c, isTaken ? f64x2.sub(v128.load(c), sum) : f64x2.add(v128.load(c), sum));
+  }
+}
+
+function fourRows(a: usize, next: usize, x: usize, sums: usize, end: usize): void {
+  const f0 = v128.load_splat<f64>(x);
+  const f1 = v128.load_splat<f64>(x, 8);
+  const f2 = v128.load_splat<f64>(x, 16);
+  const f3 = v128.load_splat<f64>(x, 24);
+  const b = a + next;
+  const c = b + next;
+  const d = c + next;
+  for (let at: usize = 0; at < end - sums; at += 16) {
+    let sum = v128.load(sums + at);
+    sum = f64x2.add(sum, f64x2.mul(v128.load(a + at), f0));
+    sum = f64x2.add(sum, f64x2.mul(v128.load(b + at), f1));
+    sum = f64x2.add(sum, f64x2.mul(v128.load(c + at), f2));
+    sum = f64x2.add(sum, f64x2.mul(v128.load(d + at), f3));
+    v128.store(sums + at, sum);
   }
 }
 
@@ -161,8 +211,53 @@ export function rowDots(
   m: i32,
   isTaken: i32,
 ): void {
-  for (let i = 0; i < rows; i++, a += (<usize>stride) << 3, c += (<usize>cStride) << 3) {
-    const sum = dot64(a, x, m);
-    f64.store(c, f64.load(c) + (isTaken ? -sum : sum));
+  const next = (<usize>stride) << 3;
+  const further = (<usize>cStride) << 3;
+  let i = 0;
+  for (; i + 1 < rows; i += 2, a += 2 * next, c += 2 * further) {
+    const sums = twoDots(a, a + next, x, m);
+    const low = f64x2.extract_lane(sums, 0);
+    const high = f64x2.extract_lane(sums, 1);
+    f64.store(c, f64.load(c) + (isTaken ? -low : low));
+    f64.store(c + further, f64.load(c + further) + (isTaken ? -high : high));
   }
+  if (i == rows) return;
+  const sum = dot64(a, x, m);
+  f64.store(c, f64.load(c) + (isTaken ? -sum : sum));
+}
+
+/** Σ a x and Σ b x, each as `dot64` has it. */
+function twoDots(a: usize, b: usize, x: usize, n: i32): v128 {
+  let s0 = f64x2.splat(0);
+  let s1 = f64x2.splat(0);
+  let s2 = f64x2.splat(0);
+  let s3 = f64x2.splat(0);
+  let t0 = f64x2.splat(0);
+  let t1 = f64x2.splat(0);
+  let t2 = f64x2.splat(0);
+  let t3 = f64x2.splat(0);
+  let k = 0;
+  for (; k + 7 < n; k += 8, a += 64, b += 64, x += 64) {
+    const x0 = v128.load(x);
+    s0 = f64x2.add(s0, f64x2.mul(v128.load(a), x0));
+    t0 = f64x2.add(t0, f64x2.mul(v128.load(b), x0));
+    const x1 = v128.load(x, 16);
+    s1 = f64x2.add(s1, f64x2.mul(v128.load(a, 16), x1));
+    t1 = f64x2.add(t1, f64x2.mul(v128.load(b, 16), x1));
+    const x2 = v128.load(x, 32);
+    s2 = f64x2.add(s2, f64x2.mul(v128.load(a, 32), x2));
+    t2 = f64x2.add(t2, f64x2.mul(v128.load(b, 32), x2));
+    const x3 = v128.load(x, 48);
+    s3 = f64x2.add(s3, f64x2.mul(v128.load(a, 48), x3));
+    t3 = f64x2.add(t3, f64x2.mul(v128.load(b, 48), x3));
+  }
+  const s = f64x2.add(f64x2.add(s0, s1), f64x2.add(s2, s3));
+  const t = f64x2.add(f64x2.add(t0, t1), f64x2.add(t2, t3));
+  let low = f64x2.extract_lane(s, 0) + f64x2.extract_lane(s, 1);
+  let high = f64x2.extract_lane(t, 0) + f64x2.extract_lane(t, 1);
+  for (; k < n; k++, a += 8, b += 8, x += 8) {
+    low += f64.load(a) * f64.load(x);
+    high += f64.load(b) * f64.load(x);
+  }
+  return f64x2.replace_lane(f64x2.splat(low), 1, high);
 }
