@@ -1,5 +1,5 @@
 /** What fit and refit leave in a folder, and what they say of it to a program. */
-import { join } from 'node:path';
+import { basename, join } from 'node:path';
 import { ADVISORY, type Site } from '@stillwell/protocol';
 import type { NewFile } from '@stillwell/runtime/files';
 import type { Survey } from './history/survey.ts';
@@ -7,8 +7,8 @@ import { hindcastJson } from './judge/hindcast-json.ts';
 import { planWorthJson } from './judge/plan-worth.ts';
 import type { FitResult } from './pipeline.ts';
 
-/** Names of the files, for help texts and last lines. */
-export const CANDIDATE_FILES = 'candidate.swc, report.html, hindcast.json, survey.json';
+/** Names of the files, for help texts. */
+export const CANDIDATE_FILES = 'candidate.swc, report.html, hindcast.json, survey.json and factors.swf';
 
 /** Candidate, report, hindcast and survey as files of a folder, made and not yet written. */
 export async function candidateFiles(
@@ -29,6 +29,11 @@ export async function candidateFiles(
   ];
 }
 
+/** The last word on what stands where. */
+export function writtenText(folder: string, files: readonly NewFile[]): string {
+  return `Written to ${folder}: ${files.map(({ path }) => basename(path)).join(', ')}\n`;
+}
+
 /** The result as plain JSON. */
 export function candidateFacts(folder: string, result: FitResult): Record<string, unknown> {
   return {
@@ -41,8 +46,14 @@ export function candidateFacts(folder: string, result: FitResult): Record<string
     audit: result.audit,
     ...planWorthJson(result.planWorth),
     chosen: result.chosen,
+    learned_earlier: earlierFacts(result),
     warnings: result.warnings,
     timings_ms: result.timings,
     advisory: ADVISORY,
   };
+}
+
+function earlierFacts({ earlier, hindcast }: FitResult): Record<string, unknown> | null {
+  const time = (tick: number): string => new Date(tick * hindcast.tickMs).toISOString();
+  return earlier && { from: time(earlier.fromTick), to: time(earlier.toTick), ticks: earlier.ticks };
 }

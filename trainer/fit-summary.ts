@@ -39,9 +39,19 @@ export function fitSummary(result: FitResult): string {
     `Bundle ${bytesText(result.document.length)}: ${chosen.kind} kind, ${chosen.name}; ` +
       `rounding cost ${rounding} of the squared error.`,
     guardText(result),
+    ...earlierText(result),
     ...result.warnings.map((warning) => `Note: ${warning}`),
     '',
   ].join('\n');
+}
+
+/** What was learned from beside the history in memory. */
+function earlierText({ earlier, hindcast: { tickMs } }: FitResult): string[] {
+  if (earlier === null) return [];
+  const day = (tick: number): string => new Date(tick * tickMs).toISOString().slice(0, 10);
+  return [
+    `Learned from ${earlier.ticks} ticks before that as well, ${day(earlier.fromTick)} to ${day(earlier.toTick)}, by their factors.`,
+  ];
 }
 
 /** What the guard against wild readings did on sound ones. */

@@ -2,13 +2,13 @@
 import { join } from 'node:path';
 import { ADVISORY, type Site } from '@stillwell/protocol';
 import { Command } from 'commander';
-import { CANDIDATE_FILES, candidateFacts } from '../candidate-files.ts';
+import { CANDIDATE_FILES, candidateFacts, writtenText } from '../candidate-files.ts';
 import { TrainError } from '../errors.ts';
 import { type FitSiteJob, type FitSiteWatch, fitSite } from '../fit-site.ts';
 import { fitSummary } from '../fit-summary.ts';
 import { halfLifeOption, halfLifeTicks, kindOption, reason, several, share, wholeNumber } from '../option-values.ts';
 import { writeOutputs } from '../output-file.ts';
-import { FIT_DEFAULTS, type FitOptions, type FitResult } from '../pipeline.ts';
+import { FIT_DEFAULTS, type FitOptions } from '../pipeline.ts';
 import { createProgress, type Progress } from '../progress.ts';
 import { readSite } from '../site-file.ts';
 import { surveyNotes } from '../survey-notes.ts';
@@ -56,7 +56,7 @@ export function fitCommand(): Command {
       wholeNumber(1, 256),
     )
     .option('--fresh', 'with --fleet: fit sites again whose inputs and options are unchanged', false)
-    .requiredOption('--out <folder>', `folder for ${CANDIDATE_FILES} and factors.swf`)
+    .requiredOption('--out <folder>', `folder for ${CANDIDATE_FILES}`)
     .option('--time-zone <zone>', "zone of history times that carry none; the site's otherwise")
     .option('--from <time>', 'leave out readings before this time')
     .option('--until <time>', 'leave out readings from this time on')
@@ -97,14 +97,14 @@ async function run(options: FitCommandOptions): Promise<void> {
   const resumeFile = join(options.out, RESUME_FILE);
   const say = (sentence: string): void => void process.stderr.write(`${sentence}\n`);
   const job = { ...jobOf(site, history, options.out, options), resumeFile, say };
-  const { loaded, result, files, notes: more } = await fitSite(job, stepsShown());
+  const { loaded, result, files, notes } = await fitSite(job, stepsShown());
   writeOutputs(files);
   loaded.done();
-  const notes = [...surveyNotes(loaded.survey), ...more];
   process.stdout.write(
     options.json
-      ? `${JSON.stringify({ ...candidateFacts(options.out, result), survey_notes: notes }, null, 2)}\n`
-      : text(options.out, result, notes),
+      ? `${JSON.stringify({ ...candidateFacts(options.out, result), notes, survey_notes: surveyNotes(loaded.survey) }, null, 2)}\n`
+      : `${fitSummary(result)}${noted('Note', notes)}${noted('Survey', surveyNotes(loaded.survey))}\n` +
+          `${writtenText(options.out, files)}\n${ADVISORY}\n`,
   );
 }
 
@@ -165,7 +165,6 @@ function stepsShown(): FitSiteWatch {
   };
 }
 
-function text(folder: string, result: FitResult, notes: readonly string[]): string {
-  const survey = notes.map((note) => `Survey: ${note}\n`).join('');
-  return `${fitSummary(result)}${survey}\nWritten to ${folder}: ${CANDIDATE_FILES}\n\n${ADVISORY}\n`;
+function noted(label: string, sentences: readonly string[]): string {
+  return sentences.map((sentence) => `${label}: ${sentence}\n`).join('');
 }

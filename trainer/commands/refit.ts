@@ -3,7 +3,7 @@ import { join } from 'node:path';
 import { ADVISORY, type Site } from '@stillwell/protocol';
 import { Command } from 'commander';
 import { openBundleFile } from '../bundle-file.ts';
-import { CANDIDATE_FILES, candidateFacts, candidateFiles } from '../candidate-files.ts';
+import { CANDIDATE_FILES, candidateFacts, candidateFiles, writtenText } from '../candidate-files.ts';
 import { TrainError } from '../errors.ts';
 import type { Factors } from '../factors/factors.ts';
 import { FACTORS_FILE } from '../factors/keeper.ts';
@@ -46,7 +46,7 @@ export function refitCommand(): Command {
     .description('Learns a new candidate from the archive of a desk, and says whether it beats the bundle that serves.')
     .requiredOption('--archive <dir>', 'data folder of the desk')
     .requiredOption('--site <file>', 'site file')
-    .requiredOption('--out <folder>', `folder for ${CANDIDATE_FILES} and factors.swf`)
+    .requiredOption('--out <folder>', `folder for ${CANDIDATE_FILES}`)
     .option('--history <files...>', 'files of the first fit as well; the archive wins where both cover a tick', several)
     .option(
       '--factors <file>',
@@ -108,12 +108,15 @@ async function run(options: RefitCommandOptions): Promise<void> {
   );
   progress.end();
   const { factors: bytes } = result;
-  writeOutputs([
+  const written = [
     ...(await candidateFiles(options.out, site, result.absorbed.survey, result.fit)),
     ...(bytes === null ? [] : [{ path: join(options.out, FACTORS_FILE), bytes }]),
-  ]);
+  ];
+  writeOutputs(written);
   process.stdout.write(
-    options.json ? `${JSON.stringify(resultJson(options.out, result), null, 2)}\n` : text(options.out, result),
+    options.json
+      ? `${JSON.stringify(resultJson(options.out, result), null, 2)}\n`
+      : `${text(result)}\n${writtenText(options.out, written)}\n${ADVISORY}\n`,
   );
 }
 
@@ -163,7 +166,7 @@ function resultJson(folder: string, { fit, comparison, absorbed }: RefitResult):
   };
 }
 
-function text(folder: string, { fit, comparison, absorbed }: RefitResult): string {
+function text({ fit, comparison, absorbed }: RefitResult): string {
   const survey = surveyNotes(absorbed.survey)
     .map((note) => `Survey: ${note}\n`)
     .join('');
@@ -183,5 +186,5 @@ function text(folder: string, { fit, comparison, absorbed }: RefitResult): strin
           ),
           comparison.sentence,
         ].join('\n');
-  return `${fitSummary(fit)}${survey}\n${beside}\n\nWritten to ${folder}: ${CANDIDATE_FILES}\n\n${ADVISORY}\n`;
+  return `${fitSummary(fit)}${survey}\n${beside}\n`;
 }

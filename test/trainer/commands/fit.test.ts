@@ -39,7 +39,13 @@ describe('fit and hindcast', () => {
   it('writes a candidate that the other command scores the same', async () => {
     const { at, site, history } = plant();
     const text = await run(fitCommand(), '--site', site, '--history', history, '--out', at('out'));
-    expect(readdirSync(at('out')).sort()).toEqual(['candidate.swc', 'hindcast.json', 'report.html', 'survey.json']);
+    expect(readdirSync(at('out')).sort()).toEqual([
+      'candidate.swc',
+      'factors.swf',
+      'hindcast.json',
+      'report.html',
+      'survey.json',
+    ]);
     expect(text).toMatch(/Skill on \d+ origins/);
     expect(text).toMatch(/Advisory estimate/);
     const written = JSON.parse(readFileSync(at('out/hindcast.json'), 'utf8')) as HindcastText;
