@@ -12,6 +12,7 @@ import { unwritable, writeOutputs } from '../output-file.ts';
 import { createProgress } from '../progress.ts';
 import { bytesText } from '../text-table.ts';
 import { learnCondenser, learningBytes, parts } from '../wide/condense-learn.ts';
+import type { CondensePage } from '../wide/condense-page.ts';
 import { type CondenseScore, type StateSeries, scoreCondenser, stateSeries } from '../wide/condense-states.ts';
 import { condenseVerdict } from '../wide/condense-verdict.ts';
 import { type Condenser, type CondenserShape, encodeCondenser, readCondenser } from '../wide/condenser.ts';
@@ -95,12 +96,12 @@ async function run(options: CondenseOptions): Promise<void> {
     throw new TrainError('options', `--every: expected at least the ${shape.tickMs} ms between frames, got ${everyMs}`);
   const isNew = openFolder(options.out);
   try {
-    const page = await import('../wide/condense-page.ts');
+    const { condensePage } = await import('../wide/condense-page.ts');
     const reading = createProgress('reading', 'frames');
     const frames = await projectFrames(recording, shape, options.out, reading.update);
     reading.end();
     try {
-      finish(options, known, shape, recording, frames, everyMs, page);
+      finish(options, known, shape, recording, frames, everyMs, condensePage);
     } finally {
       frames.close();
     }
@@ -118,7 +119,7 @@ function finish(
   recording: Recording,
   frames: ProjectedFrames,
   everyMs: number,
-  { condensePage }: typeof import('../wide/condense-page.ts'),
+  drawPage: (page: CondensePage) => string,
 ): void {
   const condenser = known ?? learn(options, shape, recording, frames);
   if (known !== null) frames.standardise(known.mean, known.record.scale);
@@ -133,7 +134,7 @@ function finish(
   const score = scoreCondenser(condenser, frames, known === null ? parts(frames.count).choose : 0, frames.count);
   const bytes = encodeCondenser(condenser);
   const digest = createHash('sha256').update(bytes).digest('hex');
-  const page = condensePage({
+  const page = drawPage({
     condenser,
     digest,
     source: recording.name,

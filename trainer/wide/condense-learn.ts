@@ -3,11 +3,11 @@
  * many of its states are worth their place, in memory for a few windows and the factors.
  */
 import { TrainError } from '../errors.ts';
+import { chooseStates } from './condense-choose.ts';
 import type { Condenser, CondenserShape } from './condenser.ts';
 import { IncrementalSvd, svdBytes } from './incremental-svd.ts';
 import { medianWidth } from './kernel-width.ts';
 import { featuresOf, JointRows, type LiftShape, PastFeatures } from './past-features.ts';
-import { type PredictiveState, predictiveState } from './predictive-state.ts';
 import type { ProjectedFrames } from './projected-frames.ts';
 
 /** Shares of the recording: learned from, then order chosen by; the rest is held out. */
@@ -15,10 +15,8 @@ const LEARN_SHARE = 0.6;
 const CHOOSE_SHARE = 0.2;
 /** Windows that each part must hold at least. */
 const LEAST_WINDOWS = 50;
-/** Windows looked at for the width, mean and scale of random features, and for the choice of order. */
+/** Windows looked at for the width, mean and scale of random features. */
 const SAMPLE = 1000;
-/** States are added while they bring more than this part of what the best number of them brings. */
-const WORTH = 0.005;
 
 /** What a person may ask for. */
 export interface LearnOptions {
@@ -72,9 +70,7 @@ export function learnCondenser(frames: ProjectedFrames, options: LearnOptions): 
     options.progress(first, learn);
   });
   const factors = svd.factors();
-  const most = predictiveState(factors, rows.layout, options.order ?? options.mostStates);
-  const order = options.order ?? chooseOrder(frames, most, past, shape, learn, choose);
-  const found = order === most.order ? most : predictiveState(factors, rows.layout, order);
+  const found = chooseStates({ frames, factors, layout: rows.layout, past, shape, learn, choose }, options);
   return {
     shape,
     record: {
@@ -174,47 +170,4 @@ function liftOf(frames: ProjectedFrames, shape: CondenserShape, learn: number): 
   }
   const spread = square / held.length - mean.reduce((sum, value) => sum + value * value, 0);
   return { features, width, seed, mean, scale: spread > 1e-12 ? Math.sqrt(length / spread) : 1 };
-}
-
-/** The fewest states that bring nearly what the best number of them brings, on windows after those learned from. */
-function chooseOrder(
-  frames: ProjectedFrames,
-  most: PredictiveState,
-  past: PastFeatures,
-  { window, horizon, numbers }: CondenserShape,
-  from: number,
-  to: number,
-): number {
-  const gain = new Float64Array(most.order);
-  const phi = new Float64Array(past.length);
-  const d = most.order;
-  const stride = Math.max(1, Math.floor((to - from) / SAMPLE));
-  const left = new Float64Array(horizon * numbers);
-  frames.visit(
-    window + horizon,
-    from,
-    to,
-    (row) => {
-      past.write(row, 0, phi);
-      left.set(row.subarray(window * numbers));
-      for (let k = 0; k < d; k++) {
-        let x = 0;
-        for (let j = 0; j < phi.length; j++) x += most.stateMap[k * phi.length + j] * phi[j];
-        for (let c = 0; c < left.length; c++) {
-          const told = most.forecastMap[c * d + k] * x;
-          gain[k] += told * (2 * left[c] - told);
-          left[c] -= told;
-        }
-      }
-    },
-    stride,
-  );
-  let sum = 0;
-  const sums = Array.from(gain, (value) => {
-    sum += value;
-    return sum;
-  });
-  const best = Math.max(0, ...sums);
-  const enough = sums.findIndex((value) => value >= (1 - WORTH) * best);
-  return enough === -1 ? 1 : enough + 1;
 }

@@ -2,6 +2,7 @@
 import type { Condenser } from './condenser.ts';
 import { PastFeatures } from './past-features.ts';
 import type { ProjectedFrames } from './projected-frames.ts';
+import { mapStates } from './state-map.ts';
 
 /** Origins that are scored, at most. */
 const MOST_ORIGINS = 2000;
@@ -16,21 +17,6 @@ function pastOf({ shape, record, featureMean }: Condenser): PastFeatures {
     mean: featureMean,
     scale: record.featureScale,
   });
-}
-
-/** x = W φ. */
-function stateOf({ stateMap, record }: Condenser, phi: Float64Array, x: Float64Array): void {
-  for (let k = 0; k < record.order; k++) {
-    const row = k * phi.length;
-    let s0 = 0;
-    let s1 = 0;
-    let j = 0;
-    for (; j + 1 < phi.length; j += 2) {
-      s0 += stateMap[row + j] * phi[j];
-      s1 += stateMap[row + j + 1] * phi[j + 1];
-    }
-    x[k] = j < phi.length ? s0 + s1 + stateMap[row + j] * phi[j] : s0 + s1;
-  }
 }
 
 /** States by tick. */
@@ -73,7 +59,7 @@ export function stateSeries(
   };
   frames.visit(window, 0, frames.count, (row, first) => {
     past.write(row, 0, phi);
-    stateOf(condenser, phi, x);
+    mapStates(condenser, phi, x);
     // A frame a hair before its tick by rounding of times belongs to it.
     const now = Math.floor((frames.timeOf(first + window - 1) + 1e-6 * everyMs) / everyMs);
     if (now !== tick) close();
@@ -128,13 +114,13 @@ export function scoreCondenser(
       last = at;
       origins++;
       past.write(row, 0, phi);
-      stateOf(condenser, phi, now);
+      mapStates(condenser, phi, now);
       path.set(now);
       for (let h = 0; h < horizon; h++) {
         addFrameErrors(condenser, row, now, h, ours, held, mean);
         step(condenser.transition, path, d);
         past.write(row, (h + 1) * numbers, phi);
-        stateOf(condenser, phi, then);
+        mapStates(condenser, phi, then);
         for (let k = 0; k < d; k++) {
           stateOurs[k * horizon + h] += (then[k] - path[k]) ** 2;
           stateHeld[k * horizon + h] += (then[k] - now[k]) ** 2;

@@ -1,0 +1,121 @@
+/**
+ * Which states a condenser keeps: how many are worth their place, and whether their forecasts are read out of the factors, with
+ * the ridge of what was let go, or by exact regression in one more pass; both by the windows after those learned from. The
+ * first shrinks what a short recording would overrate. The second is right on a long one: directions of the truncated factors
+ * that are nearly all future hold a little past each, which within the factors seems to tell that future.
+ */
+import type { CondenserShape } from './condenser.ts';
+import type { SvdFactors } from './incremental-svd.ts';
+import type { PastFeatures } from './past-features.ts';
+import { type JointLayout, type PredictiveState, predictiveState } from './predictive-state.ts';
+import type { ProjectedFrames } from './projected-frames.ts';
+import { ReadoutRegression } from './readout.ts';
+import { clipRadius } from './spectral-clip.ts';
+import { mapStates } from './state-map.ts';
+
+/** Windows looked at. */
+const SAMPLE = 1000;
+/** States are added while they bring more than this part of what the best number of them brings. */
+const WORTH = 0.005;
+
+/** What there is to choose from: frames [0, learn) were learned from, [learn, choose) decide. */
+export interface Choice {
+  readonly frames: ProjectedFrames;
+  readonly factors: SvdFactors;
+  readonly layout: JointLayout;
+  readonly past: PastFeatures;
+  readonly shape: CondenserShape;
+  readonly learn: number;
+  readonly choose: number;
+}
+
+/** The states; `order` null: as many as pay, up to `mostStates`. */
+export function chooseStates(
+  choice: Choice,
+  { order, mostStates }: { readonly order: number | null; readonly mostStates: number },
+): PredictiveState {
+  const within = predictiveState(choice.factors, choice.layout, order ?? mostStates);
+  const exact = readOut(choice, within);
+  const [gains, exactGains] = [gainsOf(choice, within), gainsOf(choice, exact)];
+  const isExact = Math.max(...exactGains) >= Math.max(...gains);
+  const most = isExact ? exact : within;
+  const kept = order ?? worthwhile(isExact ? exactGains : gains);
+  if (kept >= most.order) return most;
+  return isExact ? readOut(choice, firstStates(within, kept)) : predictiveState(choice.factors, choice.layout, kept);
+}
+
+/** The first states alone: they are the same whatever their number. */
+function firstStates(most: PredictiveState, order: number): PredictiveState {
+  const length = most.stateMap.length / most.order;
+  return {
+    ...most,
+    order,
+    stateMap: most.stateMap.slice(0, order * length),
+    explained: most.explained.slice(0, order),
+  };
+}
+
+/** Forecasts and recursion of given states by exact regression on the windows learned from. */
+function readOut({ frames, past, shape, learn }: Choice, state: PredictiveState): PredictiveState {
+  const { window, horizon, numbers } = shape;
+  const d = state.order;
+  const future = horizon * numbers;
+  const regression = new ReadoutRegression(d, future + d);
+  const target = new Float64Array(future + d);
+  const phi = new Float64Array(past.length);
+  const x = new Float64Array(d);
+  let last = Number.NaN;
+  frames.visit(window + horizon, 0, learn, (row, first) => {
+    // The next state of the row before is this one's own, unless a break lies between.
+    if (first === last + 1) x.set(target.subarray(future));
+    else {
+      past.write(row, 0, phi);
+      mapStates(state, phi, x);
+    }
+    past.write(row, numbers, phi);
+    mapStates(state, phi, target.subarray(future));
+    target.set(row.subarray(window * numbers));
+    regression.add(x, target);
+    last = first;
+  });
+  const solved = regression.solve();
+  const { matrix, radius } = clipRadius(solved.slice(future * d), d);
+  return { ...state, forecastMap: solved.slice(0, future * d), transition: matrix, radius };
+}
+
+/** Squared error saved by the first 1, 2, … states. */
+function gainsOf({ frames, past, shape, learn, choose }: Choice, most: PredictiveState): Float64Array {
+  const { window, horizon, numbers } = shape;
+  const d = most.order;
+  const gains = new Float64Array(d);
+  const phi = new Float64Array(past.length);
+  const x = new Float64Array(d);
+  const left = new Float64Array(horizon * numbers);
+  frames.visit(
+    window + horizon,
+    learn,
+    choose,
+    (row) => {
+      past.write(row, 0, phi);
+      left.set(row.subarray(window * numbers));
+      mapStates(most, phi, x);
+      for (let k = 0; k < d; k++) {
+        for (let c = 0; c < left.length; c++) {
+          const told = most.forecastMap[c * d + k] * x[k];
+          gains[k] += told * (2 * left[c] - told);
+          left[c] -= told;
+        }
+      }
+    },
+    Math.max(1, Math.floor((choose - learn) / SAMPLE)),
+  );
+  for (let k = 1; k < d; k++) gains[k] += gains[k - 1];
+  return gains;
+}
+
+/** The fewest that bring nearly what the best number of them brings; 1 where none brings anything. */
+function worthwhile(gains: Float64Array): number {
+  const best = Math.max(0, ...gains);
+  const enough = gains.findIndex((gain) => gain >= (1 - WORTH) * best);
+  return enough === -1 ? 1 : enough + 1;
+}
