@@ -2,6 +2,9 @@ export { type Archive, type ArchivedChannel, readArchive } from './desk/archive.
 export { Collector } from './desk/collect.ts';
 export { Shelf } from './desk/shelf.ts';
 export { openStore } from './desk/store/open.ts';
+export type { Factors } from './factors/factors.ts';
+export { FactorsGatherer } from './factors/gather.ts';
+export { momentsFromFactors } from './factors/moments.ts';
 export { loadHistory } from './history/load.ts';
 export { designBank, featureCount } from './identify/bank.ts';
 export { fitWindowRidge } from './judge/window-ridge.ts';
