@@ -8,6 +8,7 @@ import { cholesky, solveCholesky } from '../linalg/cholesky.ts';
 import { multiply } from '../linalg/products.ts';
 import type { Moments } from './moments.ts';
 import type { StepGroup } from './step-groups.ts';
+import { pickedRows, pickedSquare, usedRows } from './used-rows.ts';
 
 /** Sizes of a set of moments. */
 export interface Layout {
@@ -132,13 +133,26 @@ function cellKey({ penalty, kept }: Cell): string {
  * units   standardised; sums
  * throws  nothing
  * source  as `ridgeOwn`, on the residual: its cross moments are R - S own
- * cost    O(p² ny steps)
+ * cost    O(p F' steps) a signal, F' the features that its map uses
  */
 export function leftByOwn(moments: Moments, layout: Layout, own: Float64Array): Float64Array {
   const p = layout.channelCount * layout.featureCount;
-  const right = multiply(moments.features, own, p, p, layout.signalCount * layout.steps);
-  for (let k = 0; k < right.length; k++) right[k] = moments.future[k] - right[k];
-  return right;
+  const { signalCount, steps } = layout;
+  const width = signalCount * steps;
+  const left = moments.future.slice();
+  for (let i = 0; i < signalCount; i++) {
+    const used = usedRows(own, p, width, i * steps, (i + 1) * steps);
+    const map = pickedRows(own, width, used, i * steps, (i + 1) * steps);
+    const features = new Float64Array(p * used.length);
+    for (let f = 0; f < p; f++) {
+      for (let b = 0; b < used.length; b++) features[f * used.length + b] = moments.features[f * p + used[b]];
+    }
+    const right = multiply(features, map, p, used.length, steps);
+    for (let f = 0; f < p; f++) {
+      for (let h = 0; h < steps; h++) left[f * width + i * steps + h] -= right[f * steps + h];
+    }
+  }
+  return left;
 }
 
 /** Features of all channels that a cell keeps, and the equations of the cross stage on them. */
@@ -163,13 +177,7 @@ export function crossSystem(moments: Moments, layout: Layout, kept: readonly num
   const chosen = Int32Array.from({ length: layout.channelCount * kept.length }, (_, a) => {
     return Math.floor(a / kept.length) * layout.featureCount + kept[a % kept.length];
   });
-  const n = chosen.length;
-  const gram = new Float64Array(n * n);
-  for (let a = 0; a < n; a++) {
-    const row = chosen[a] * p;
-    for (let b = 0; b < n; b++) gram[a * n + b] = moments.features[row + chosen[b]];
-  }
-  return { chosen, gram };
+  return { chosen, gram: pickedSquare(moments.features, p, chosen) };
 }
 
 /**
@@ -236,17 +244,20 @@ export function twoStageMap(moments: Moments, layout: Layout, plan: TwoStagePlan
  * units   standardised²
  * throws  nothing
  * source  definition
- * cost    O(p² ny steps)
+ * cost    O(n² ny steps), n the features that the map uses
  */
 export function mapError(moments: Moments, layout: Layout, map: Float64Array): Float64Array {
   const p = layout.channelCount * layout.featureCount;
   const width = layout.signalCount * layout.steps;
-  const pushed = multiply(moments.features, map, p, p, width);
+  const used = usedRows(map, p, width, 0, width);
+  const n = used.length;
+  const some = pickedRows(map, width, used, 0, width);
+  const pushed = multiply(pickedSquare(moments.features, p, used), some, n, n, width);
   const out = moments.energy.slice();
-  for (let f = 0; f < p; f++) {
+  for (let a = 0; a < n; a++) {
+    const row = used[a] * width;
     for (let k = 0; k < width; k++) {
-      const at = f * width + k;
-      out[k] += map[at] * (pushed[at] - 2 * moments.future[at]);
+      out[k] += some[a * width + k] * (pushed[a * width + k] - 2 * moments.future[row + k]);
     }
   }
   for (let k = 0; k < width; k++) out[k] = Math.max(0, out[k]) / moments.origins;
