@@ -2,12 +2,15 @@
  * Suite `training`: what learning costs, in time and memory. The plain suite ends within about a quarter of an hour on two cores;
  * longer groups run when they are asked for by name.
  */
+
+import { factorsRows } from './factors-rows.ts';
 import { type BenchOptions, isWanted, type Row } from './harness.ts';
 import { kernelRows } from './kernels.ts';
 import { sizeRows } from './size-rows.ts';
 import { growthRows } from './training-growth.ts';
 import { historyRows } from './training-history.ts';
 import { refitRows } from './training-refit.ts';
+import { featureRows, projectionRows, wideCameraRows, wideWindowRows } from './wide-features-rows.ts';
 import { wideSvdRows } from './wide-svd-rows.ts';
 
 interface Group {
@@ -23,8 +26,13 @@ const GROUPS: readonly Group[] = [
   { name: 'growth', rows: growthRows },
   { name: 'refit', rows: refitRows },
   { name: 'size', rows: sizeRows },
+  { name: 'factors', rows: factorsRows },
   { name: 'kernels', rows: kernelRows },
   { name: 'incremental SVD', rows: wideSvdRows },
+  { name: 'features', rows: featureRows },
+  { name: 'projection', rows: projectionRows },
+  { name: 'wide windows', long: 12, rows: wideWindowRows },
+  { name: 'wide camera', long: 6, rows: wideCameraRows },
 ];
 
 /** Rows of the suite. */
