@@ -39,8 +39,10 @@ export class FourierPlans {
    * cost    4.25 n log2 n operations
    */
   transform(re: Pointer, im: Pointer, n: number): void {
+    this.#plan(n);
     const mark = this.#arena.mark();
-    const [yr, yi] = [this.#arena.takeRaw(8 * n), this.#arena.takeRaw(8 * n)];
+    const yr = this.#arena.takeRaw(16 * n);
+    const yi = yr + 8 * n;
     if (this.#run(re, im, yr, yi, n)) {
       const bytes = new Uint8Array(this.#arena.buffer);
       bytes.copyWithin(re, yr, yr + 8 * n);
@@ -65,14 +67,16 @@ export class FourierPlans {
       return;
     }
     const half = n / 2;
-    const mark = this.#arena.mark();
-    const [yr, yi] = [this.#arena.takeRaw(8 * half), this.#arena.takeRaw(8 * half)];
+    const turns = this.#turn(half);
     // Begun on the side from which the last pass ends in re and im.
-    const begin = this.#plan(half).passes.length % 2 === 1;
-    const [fromR, fromI, toR, toI] = begin ? [yr, yi, re, im] : [re, im, yr, yi];
+    const isOdd = this.#plan(half).passes.length % 2 === 1;
+    const mark = this.#arena.mark();
+    const yr = this.#arena.takeRaw(8 * n);
+    const yi = yr + 8 * half;
+    const [fromR, fromI, toR, toI] = isOdd ? [yr, yi, re, im] : [re, im, yr, yi];
     this.#core.split(x, fromR, fromI, half);
     this.#run(fromR, fromI, toR, toI, half);
-    this.#core.untangle(re, im, this.#turn(half), half);
+    this.#core.untangle(re, im, turns, half);
     this.#arena.release(mark);
   }
 
@@ -91,9 +95,12 @@ export class FourierPlans {
       return;
     }
     const half = n / 2;
-    this.#core.tangle(re, im, this.#turn(half), half);
+    this.#plan(half);
+    const turns = this.#turn(half);
     const mark = this.#arena.mark();
-    const [yr, yi] = [this.#arena.takeRaw(8 * half), this.#arena.takeRaw(8 * half)];
+    const yr = this.#arena.takeRaw(8 * n);
+    const yi = yr + 8 * half;
+    this.#core.tangle(re, im, turns, half);
     // Real and imaginary parts change places, which turns the transform into its inverse.
     const isBeyond = this.#run(im, re, yi, yr, half);
     this.#core.join(x, isBeyond ? yr : re, isBeyond ? yi : im, 1 / n, half);

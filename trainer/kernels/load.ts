@@ -43,20 +43,21 @@ export function hasSimd(): boolean {
  * cost    reads and compiles 10 kB once in a process
  */
 export function loadCore(memory: WasmMemory): Core {
-  compiled ??= compile(readModule(fileURLToPath(FILE)), fileURLToPath(FILE));
+  compiled ??= openModule(fileURLToPath(FILE));
   return new webAssembly!.Instance(compiled, { env: { memory } }).exports as unknown as Core;
 }
 
 /**
- * The module, checked against its own digest.
+ * The module in a file, checked against its own digest.
  *
- * shapes  bytes of the file
+ * shapes  path of kernels.wasm
  * units   none
- * throws  TrainError 'file' where a byte is not as built
+ * throws  TrainError 'file' where the file is missing or a byte is not as built
  * source  the layout above
  * cost    one SHA-256 over 10 kB
  */
-export function compile(bytes: Uint8Array<ArrayBuffer>, path: string): WasmModule {
+export function openModule(path: string): WasmModule {
+  const bytes = read(path);
   const end = bytes.length - SECTION;
   const digest = createHash('sha256')
     .update(bytes.subarray(0, Math.max(0, end)))
@@ -71,7 +72,7 @@ export function compile(bytes: Uint8Array<ArrayBuffer>, path: string): WasmModul
   }
 }
 
-function readModule(path: string): Uint8Array<ArrayBuffer> {
+function read(path: string): Uint8Array<ArrayBuffer> {
   try {
     return new Uint8Array(readFileSync(path));
   } catch (cause) {

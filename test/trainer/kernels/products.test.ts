@@ -16,6 +16,7 @@ const SHAPES = [
   [700, 2, 1],
   [300, 19, 1],
   [300, 1, 19],
+  [100, 64, 10],
 ] as const;
 
 function plainTransposed(a: Numbers, b: Numbers, rows: number, m: number, n: number, c: Float64Array): Float64Array {
@@ -91,6 +92,21 @@ describe.each(SHAPES)('rows %i, m %i, n %i', (k, m, n) => {
     });
     expect(bits(simd!)).toBe(bits(scalar!));
   });
+});
+
+// Rows of more than 2048 columns go in runs, the last shorter.
+test.each([3, 9])('a vector by %i long rows', (k) => {
+  const n = 2 * 2048 + 13;
+  const results = bothKernels(BYTES).map((kernels) => {
+    const a = fill(kernels.alloc64(k), 11);
+    const b = fill(kernels.alloc64(k * n), 12);
+    const c = fill(kernels.alloc64(n), 13);
+    const left = c.map((value, j) => a.reduce((sum, f, t) => sum - f * b[t * n + j]!, value));
+    kernels.multiplyTake(c, a, b, 1, k, n);
+    expect(gap(c, left)).toBeLessThan(1e-14);
+    return bits(c);
+  });
+  expect(results[0] === results[1]).toBe(true);
 });
 
 test('agrees with ml-matrix 6.15.1', () => {
