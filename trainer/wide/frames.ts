@@ -7,7 +7,7 @@
 export interface FrameChunk {
   /** How many frames. */
   readonly count: number;
-  /** (count × frameLength), row-major; the source may use it again for its next chunk. */
+  /** The first (count × frameLength) numbers, row-major; the source may use it again for its next chunk. */
   readonly values: Float32Array;
 }
 
