@@ -48,7 +48,11 @@ export function fitCommand(): Command {
       'Learns a model of a site from its history and judges it on the part it never saw; or of many sites at once.',
     )
     .option('--site <file>', 'site file')
-    .option('--history <files...>', 'CSV or NDJSON files, also gzipped', several)
+    .option(
+      '--history <files...>',
+      'CSV, NDJSON or Parquet files, text also as .gz or .zst; folders and patterns too',
+      several,
+    )
     .option('--fleet <path>', 'instead of both: a fleet file, or a folder with one sub-folder a site')
     .option(
       '--threads <count>',
