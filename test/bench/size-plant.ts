@@ -3,7 +3,7 @@
  * by themselves and follow the one before, printed to a hundredth.
  */
 import { once } from 'node:events';
-import { createWriteStream, writeFileSync } from 'node:fs';
+import { createWriteStream, rmSync, writeFileSync } from 'node:fs';
 import { join } from 'node:path';
 import { finished } from 'node:stream/promises';
 import { uniforms } from './known-plant.ts';
@@ -13,6 +13,13 @@ export interface SizeShape {
   readonly signals: number;
   readonly ticks: number;
   readonly horizon: number;
+  /** log.parquet in place of log.csv. */
+  readonly isParquet?: boolean;
+}
+
+/** Name of the file. */
+export function logName({ isParquet }: SizeShape): string {
+  return isParquet === true ? 'log.parquet' : 'log.csv';
 }
 
 const FIRST_MS = Date.UTC(2015, 0, 1);
@@ -20,8 +27,9 @@ const TICK_MS = 60_000;
 const DAY = 1440;
 const BLOCK_ROWS = 4096;
 
-/** Writes site.yaml and log.csv into a folder. */
-export async function writeSizePlant(folder: string, { signals, ticks, horizon }: SizeShape, seed = 11): Promise<void> {
+/** Writes site.yaml and the log into a folder. */
+export async function writeSizePlant(folder: string, shape: SizeShape, seed = 11): Promise<void> {
+  const { signals, ticks, horizon } = shape;
   const names = Array.from({ length: signals }, (_, c) => `s${c + 1}`);
   const site = ['site: long-weir', 'time_zone: UTC', 'tick: 1min', `horizon: ${horizon}`, 'signals:'];
   writeFileSync(join(folder, 'site.yaml'), `${[...site, ...names.map((name) => `  - {name: ${name}}`)].join('\n')}\n`);
@@ -46,4 +54,15 @@ export async function writeSizePlant(folder: string, { signals, ticks, horizon }
   }
   out.end();
   await finished(out);
+  if (shape.isParquet === true) await asParquet(join(folder, 'log.csv'), join(folder, logName(shape)));
+}
+
+async function asParquet(from: string, to: string): Promise<void> {
+  const { DuckDBInstance } = await import('@duckdb/node-api');
+  const instance = await DuckDBInstance.create(':memory:');
+  const connection = await instance.connect();
+  await connection.run(`COPY (SELECT * FROM read_csv('${from}')) TO '${to}'`);
+  connection.closeSync();
+  instance.closeSync();
+  rmSync(from);
 }

@@ -12,6 +12,7 @@ const SHAPES: readonly SizeShape[] = [
   { signals: 24, ticks: 64_000, horizon: 24 },
   { signals: 2, ticks: 1_000_000, horizon: 24 },
   { signals: 8, ticks: 1_000_000, horizon: 60 },
+  { signals: 8, ticks: 1_000_000, horizon: 24, isParquet: true },
 ];
 /** Foreseen within 25 %, either way. */
 const BAR = 1.25;
@@ -21,7 +22,7 @@ const REPEATS = 2;
 export async function* sizeRows({ note }: BenchOptions): AsyncIterable<Row> {
   for (const shape of SHAPES) {
     const run = await runShape(shape, REPEATS);
-    const name = `${shape.ticks.toLocaleString('en')} x ${shape.signals}, horizon ${shape.horizon}`;
+    const name = `${shape.ticks.toLocaleString('en')} x ${shape.signals}, horizon ${shape.horizon}${shape.isParquet === true ? ', Parquet' : ''}`;
     note(`size: ${name}: ${wordsOf(run)}`);
     const { fit } = run.foreseen;
     yield off(`size: peak memory, ${name}`, fit.peakBytes, run.peakBytes);

@@ -2,7 +2,7 @@
 import { mkdtempSync, rmSync, statSync } from 'node:fs';
 import { tmpdir } from 'node:os';
 import { join } from 'node:path';
-import { type SizeShape, writeSizePlant } from './size-plant.ts';
+import { logName, type SizeShape, writeSizePlant } from './size-plant.ts';
 import { measure, STILLWELL } from './training-process.ts';
 
 /** What `stillwell size --json` says, as far as it is held against something. */
@@ -33,7 +33,7 @@ export async function runShape(shape: SizeShape, repeats: number): Promise<SizeR
   const folder = mkdtempSync(join(tmpdir(), 'stillwell-size-'));
   try {
     await writeSizePlant(folder, shape);
-    const files = ['--site', join(folder, 'site.yaml'), '--history', join(folder, 'log.csv')];
+    const files = ['--site', join(folder, 'site.yaml'), '--history', join(folder, logName(shape))];
     const out = join(folder, 'out');
     const sized = await measure([STILLWELL, 'size', ...files, '--json']);
     const foreseen = JSON.parse(sized.stdout) as Foreseen;

@@ -14,7 +14,8 @@ export interface FleetPool {
 
 /** Node reads no TypeScript, so from the sources (tests) the worker is that of the last build. */
 function workerFile(): URL {
-  return new URL(import.meta.url.endsWith('.ts') ? '../dist/fleet/worker.js' : './worker.js', import.meta.url);
+  if (import.meta.url.endsWith('.ts')) return new URL('../dist/fleet/worker.js', import.meta.url);
+  return new URL('./worker.js', import.meta.url);
 }
 
 /** How to start it. */

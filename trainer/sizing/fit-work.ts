@@ -93,8 +93,6 @@ export function timeWork(shape: FitShape): Work {
     textByte: textBytes,
     columnReading: textBytes > 0 ? 0 : readings,
     recentReading: recentTicks * channels,
-    recentPair: recentTicks * channels ** 2,
-    signalSolve: signals * all ** 2,
     featureCubed: all ** 3,
     forecastCell: scored * signals * horizon,
     tightSolve: isTight ? all ** 3 : 0,
