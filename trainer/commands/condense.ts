@@ -11,9 +11,15 @@ import { several, wholeNumber } from '../option-values.ts';
 import { unwritable, writeOutputs } from '../output-file.ts';
 import { createProgress } from '../progress.ts';
 import { bytesText } from '../text-table.ts';
-import { learnCondenser, learningBytes, parts } from '../wide/condense-learn.ts';
+import { learnCondenser, learningBytes } from '../wide/condense-learn.ts';
 import type { CondensePage } from '../wide/condense-page.ts';
-import { type CondenseScore, type StateSeries, scoreCondenser, stateSeries } from '../wide/condense-states.ts';
+import {
+  type CondenseScore,
+  firstHeldOut,
+  type StateSeries,
+  scoreCondenser,
+  stateSeries,
+} from '../wide/condense-states.ts';
 import { condenseVerdict } from '../wide/condense-verdict.ts';
 import { type Condenser, type CondenserShape, encodeCondenser, readCondenser } from '../wide/condenser.ts';
 import { openFrames } from '../wide/open-frames.ts';
@@ -131,7 +137,7 @@ function finish(
       'history',
       `${recording.name}: expected at least ${shape.window} frames without a break, got ${frames.count}; give a longer recording`,
     );
-  const score = scoreCondenser(condenser, frames, known === null ? parts(frames.count).choose : 0, frames.count);
+  const score = scoreCondenser(condenser, frames, firstHeldOut(condenser, frames), frames.count);
   const bytes = encodeCondenser(condenser);
   const digest = createHash('sha256').update(bytes).digest('hex');
   const page = drawPage({
@@ -236,10 +242,13 @@ function requireAlike({ shape }: Condenser, { name, frameLength, tickMs }: Recor
 /** Said before anything is read. */
 function requireMemory(shape: CondenserShape, rank: number): void {
   const needed = learningBytes(shape, rank);
-  if (needed > freemem())
+  // A container's limit counts where there is one; without one it is 0 or larger than any machine.
+  const limit = process.constrainedMemory() || Number.POSITIVE_INFINITY;
+  const free = Math.max(0, Math.min(freemem(), limit - process.memoryUsage.rss()));
+  if (needed > free)
     throw new TrainError(
       'options',
-      `Learning this takes ${bytesText(needed)} of memory, and ${bytesText(freemem())} is free; ` +
+      `Learning this takes ${bytesText(needed)} of memory, and ${bytesText(free)} is free; ` +
         'give a smaller --window, --horizon, --projection, --features or --rank',
       { details: { needed } },
     );

@@ -78,6 +78,7 @@ export function learnCondenser(frames: ProjectedFrames, options: LearnOptions): 
       frames: frames.count,
       startMs: frames.timeOf(0),
       learnedUntilMs: frames.timeOf(learn),
+      decidedUntilMs: frames.timeOf(choose),
       rank: factors.rank,
       order: found.order,
       rows: factors.rows,

@@ -86,6 +86,14 @@ export interface CondenseScore {
   readonly stateHeld: Float64Array;
 }
 
+/** The first frame that a condenser neither learned nor was decided from; frames of another time are all so. */
+export function firstHeldOut({ record }: Condenser, frames: ProjectedFrames): number {
+  if (frames.timeOf(0) >= record.decidedUntilMs || frames.timeOf(frames.count - 1) < record.startMs) return 0;
+  let index = 0;
+  while (index < frames.count && frames.timeOf(index) < record.decidedUntilMs) index++;
+  return index;
+}
+
 /** Scores forecasts over frames [from, to); null where no window fits. */
 export function scoreCondenser(
   condenser: Condenser,

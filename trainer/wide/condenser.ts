@@ -36,6 +36,8 @@ export interface CondenserRecord {
   readonly startMs: number;
   /** Time of the first frame that was not learned from. */
   readonly learnedUntilMs: number;
+  /** Time of the first frame that did not decide anything: those from here on are held out. */
+  readonly decidedUntilMs: number;
   readonly rank: number;
   readonly order: number;
   readonly rows: number;

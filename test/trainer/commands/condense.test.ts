@@ -103,6 +103,10 @@ describe('a scene of two causes in noise', () => {
     );
     expect(readFileSync(join(at('c'), 'states.csv'), 'utf8')).toBe(readFileSync(join(at('a'), 'states.csv'), 'utf8'));
     expect(readdirSync(at('c')).sort()).toEqual(['report.html', 'states.csv']);
+    // The same recording is held out no more than it was: what was learned from is not judged again.
+    const judged = (folder: string): string | undefined =>
+      /\d+ forecasts from [^.]*/.exec(readFileSync(join(at(folder), 'report.html'), 'utf8'))?.[0];
+    expect(judged('c')).toBe(judged('a'));
     // A day later, other noise: the same causes show in the same states.
     const later = scene(600, 2, noise);
     const other = writeNpy(at('later.npy'), later.frames, LENGTH);
