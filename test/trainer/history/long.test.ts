@@ -125,11 +125,11 @@ describe('the rules of ticks hold for what is older', () => {
       exclude: [
         { fromMs: START + 10 * MINUTE, toMs: START + 40 * MINUTE, reason: 'overhaul', signals: null },
         {
-          when: { signal: 'flow', is: 'equal', level: 99 },
+          when: { signal: 'flow', is: 'equals', level: 99 },
           ...{ beforeMs: 7 * MINUTE, afterMs: 30 * MINUTE, reason: 'local', signals: null },
         },
       ],
-    } as never);
+    });
     const isLocal = (n: number): boolean => (n >= 70 && n < 120) || n === 161 || (n >= 225 && n < 240);
     const all = rows(300).map((r, n) => ({ ...r, flow: isLocal(n) ? 99 : r.flow }));
     const { sink, loaded } = await stream([file(wideCsv(all))], asked);
