@@ -15,7 +15,9 @@ import type { FrameChunk, FrameSource, FrameTimes } from './frames.ts';
 /** Rows DuckDB hands on at once, at most. */
 const VECTOR_ROWS = 2048;
 /** Bytes of frames that may have to be held at once where nothing else is said. */
-const MOST_BYTES = 256 << 20;
+const MOST_BYTES = 64 << 20;
+/** Bytes of frames handed on at once; at least one frame. */
+const CHUNK_BYTES = 4 << 20;
 const NUMBERS = /^(U?(TINY|SMALL|BIG)INT|U?INTEGER|FLOAT|DOUBLE|DECIMAL.*)$/;
 const LISTS = /^(U?(TINY|SMALL|BIG)INT|U?INTEGER|FLOAT|DOUBLE|DECIMAL[^[]*)\[\d*\]$/;
 
@@ -127,21 +129,25 @@ async function timesOf(
 
 async function* readChunks(path: string, columns: Columns, frameLength: number): AsyncGenerator<FrameChunk> {
   const { list, bins } = columns;
-  const wanted = list === null ? bins.map((name) => `${quoted(name)}::FLOAT`) : [`${quoted(list)}::FLOAT[]`];
+  const none = '[]::FLOAT[]';
+  const wanted =
+    list === null ? bins.map((name) => `${quoted(name)}::FLOAT`) : [`coalesce(${quoted(list)}::FLOAT[], ${none})`];
+  const most = Math.max(1, Math.floor(CHUNK_BYTES / (4 * frameLength)));
+  const values = new Float32Array(most * frameLength);
   const instance = await openDatabase();
   const connection = await instance.connect();
   try {
     const result = await connection.stream(`SELECT ${wanted.join(', ')} FROM read_parquet($1)`, [path]);
-    let values = new Float32Array(0);
     for (let frame = 0; ; ) {
       const chunk = await result.fetchChunk();
       if (chunk === null || chunk.rowCount === 0) return;
-      const numbers = chunk.rowCount * frameLength;
-      if (values.length < numbers) values = new Float32Array(numbers);
-      if (list === null) takeBins(path, bins, chunk, values, frame);
-      else takeLists(path, list, chunk, values, frameLength, frame);
-      checkFinite(path, values.subarray(0, numbers), numbers, frameLength, frame);
-      yield { count: chunk.rowCount, values };
+      for (let row = 0; row < chunk.rowCount; row += most) {
+        const rows: Rows = { chunk, row, count: Math.min(most, chunk.rowCount - row), first: frame };
+        if (list === null) takeBins(path, bins, rows, values);
+        else takeLists(path, list, rows, values, frameLength);
+        checkFinite(path, values, rows.count * frameLength, frameLength, frame + row);
+        yield { count: rows.count, values };
+      }
       frame += chunk.rowCount;
     }
   } catch (cause) {
@@ -152,19 +158,21 @@ async function* readChunks(path: string, columns: Columns, frameLength: number):
   }
 }
 
-function takeBins(
-  path: string,
-  bins: readonly string[],
-  chunk: DuckDBDataChunk,
-  out: Float32Array,
-  frame: number,
-): void {
+/** Some rows of a chunk, `first` the frame that the chunk begins with. */
+interface Rows {
+  readonly chunk: DuckDBDataChunk;
+  readonly row: number;
+  readonly count: number;
+  readonly first: number;
+}
+
+function takeBins(path: string, bins: readonly string[], { chunk, row, count, first }: Rows, out: Float32Array): void {
   bins.forEach((name, k) => {
     const vector = chunk.getColumnVector(k) as DuckDBFloatVector;
-    for (let row = 0; row < chunk.rowCount; row++) {
-      const value = vector.getItem(row);
-      if (value === null) throw missing(path, name, frame + row);
-      out[row * bins.length + k] = value;
+    for (let i = 0; i < count; i++) {
+      const value = vector.getItem(row + i);
+      if (value === null) throw missing(path, name, first + row + i);
+      out[i * bins.length + k] = value;
     }
   });
 }
@@ -172,26 +180,26 @@ function takeBins(
 function takeLists(
   path: string,
   list: string,
-  chunk: DuckDBDataChunk,
+  { chunk, row, count, first }: Rows,
   out: Float32Array,
   frameLength: number,
-  frame: number,
 ): void {
   const vector = chunk.getColumnVector(0) as DuckDBListVector;
-  for (let row = 0; row < chunk.rowCount; row++) {
-    const numbers = vector.getItemVector(row) as DuckDBFloatVector | null;
-    const length = numbers?.itemCount ?? 0;
-    if (numbers === null || length !== frameLength)
+  const numbers = vector.childVector as DuckDBFloatVector;
+  for (let i = 0; i < count; i++) {
+    const length = vector.getEntryLength(row + i);
+    if (length !== frameLength)
       throw refusal(
         { file: path, field: list },
         `${frameLength} numbers in every row, as in the first`,
-        `${length} in row ${frame + row} (from 0)`,
+        `${length} in row ${first + row + i} (from 0)`,
         'leave such rows out',
       );
+    const at = vector.getEntryOffset(row + i);
     for (let k = 0; k < length; k++) {
-      const value = numbers.getItem(k);
-      if (value === null) throw missing(path, list, frame + row);
-      out[row * frameLength + k] = value;
+      const value = numbers.getItem(at + k);
+      if (value === null) throw missing(path, list, first + row + i);
+      out[i * frameLength + k] = value;
     }
   }
 }

@@ -81,6 +81,11 @@ describe('what is refused', () => {
       'column "a": expected a number, got none in row 1',
     ],
     ['a number that is none', "SELECT ['NaN'::FLOAT] AS v", 'got NaN at number 0 of frame 0'],
+    [
+      'a row without a list',
+      'SELECT [1.0] AS v UNION ALL SELECT NULL',
+      'expected 1 numbers in every row, as in the first, got 0 in row 1',
+    ],
     ['two lists', 'SELECT [1.0] AS a, [2.0] AS b', 'expected one column with a list of numbers'],
     ['no numbers', "SELECT 'a' AS name", 'got "name VARCHAR"'],
     ['no rows', 'SELECT 1.0 AS a WHERE false', 'expected frames, got no rows'],
