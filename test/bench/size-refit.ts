@@ -1,8 +1,11 @@
 /**
- * Measures the constants of trainer/sizing/constants.ts anew and prints them: `npm run build && node test/bench/dist/size-refit.js`.
+ * Measures the constants of trainer/sizing/constants.ts anew and prints them: `npm run build && node test/bench/dist/size-refit.js`,
+ * or writes them there with --write. Takes some five minutes.
  * The shapes are others than those that the bench then holds the foreseen against. Run it on a quiet machine: what others do
  * lengthens even the processor's time, by a fifth where each core is shared.
  */
+import { readFileSync, writeFileSync } from 'node:fs';
+import { fileURLToPath } from 'node:url';
 import { bundleWork, memoryWork, timeWork, type Work } from '@stillwell/trainer';
 import { leastRelative } from './least-relative.ts';
 import type { SizeShape } from './size-plant.ts';
@@ -32,7 +35,7 @@ const REPEATS = 2;
 const words = (name: string, prices: Work): string =>
   `export const ${name}: Work = {\n${Object.entries(prices)
     .map(([key, price]) => `  ${key}: ${Number(price.toPrecision(4))},\n`)
-    .join('')}};\n`;
+    .join('')}};`;
 
 const runs: SizeRun[] = [];
 for (const shape of SHAPES) {
@@ -48,23 +51,33 @@ const fitted = (name: string, work: (run: SizeRun) => Work, came: (run: SizeRun)
   process.stderr.write(`${name}: worst ${worst.toFixed(3)} times off\n`);
   return words(name, prices);
 };
-process.stdout.write(
-  [
-    `export const PROBE_SECONDS = ${PROBE.toPrecision(3)};\n`,
-    fitted(
-      'SECONDS',
-      ({ foreseen }) => timeWork(foreseen.fit.shape),
-      ({ seconds }) => seconds,
-    ),
-    fitted(
-      'BYTES',
-      ({ foreseen }) => memoryWork(foreseen.fit.shape),
-      ({ peakBytes }) => peakBytes,
-    ),
-    fitted(
-      'BUNDLE',
-      ({ foreseen }) => bundleWork(foreseen.fit.shape),
-      ({ bundleBytes }) => bundleBytes,
-    ),
-  ].join('\n'),
-);
+const blocks = [
+  `export const PROBE_SECONDS = ${PROBE.toPrecision(3)};`,
+  fitted(
+    'SECONDS',
+    ({ foreseen }) => timeWork(foreseen.fit.shape),
+    ({ seconds }) => seconds,
+  ),
+  fitted(
+    'BYTES',
+    ({ foreseen }) => memoryWork(foreseen.fit.shape),
+    ({ peakBytes }) => peakBytes,
+  ),
+  fitted(
+    'BUNDLE',
+    ({ foreseen }) => bundleWork(foreseen.fit.shape),
+    ({ bundleBytes }) => bundleBytes,
+  ),
+];
+if (process.argv.includes('--write')) {
+  const file = fileURLToPath(new URL('../../../trainer/sizing/constants.ts', import.meta.url));
+  const names = /^export const (\w+)/;
+  const text = blocks.reduce(
+    (before, block) => {
+      const [, name] = names.exec(block) as unknown as [string, string];
+      return before.replace(new RegExp(`export const ${name}(: Work)? = [^;]*;`), block);
+    },
+    readFileSync(file, 'utf8'),
+  );
+  writeFileSync(file, text);
+} else process.stdout.write(`${blocks.join('\n\n')}\n`);

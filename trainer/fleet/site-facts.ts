@@ -48,7 +48,7 @@ const CURVE_POINTS = 16;
 const LEAST_COUNTED = -1;
 
 /** Gathers them. */
-export function siteFacts({ loaded, result }: FittedSite): SiteFacts {
+export function siteFacts({ loaded, result, notes }: FittedSite): SiteFacts {
   const { bundle, hindcast, verdicts, chosen, document, warnings } = result;
   const { series } = loaded;
   const signals = verdicts.signals.map(({ signal, skill, bestRival, coverage, sentence }) => ({
@@ -79,7 +79,7 @@ export function siteFacts({ loaded, result }: FittedSite): SiteFacts {
     signals,
     skill_by_step: skillCurve(hindcast),
     warnings,
-    survey_notes: surveyNotes(loaded.survey),
+    survey_notes: [...surveyNotes(loaded.survey), ...notes],
   };
 }
 
