@@ -38,10 +38,13 @@ export function chooseStates(
   const exact = readOut(choice, within);
   const [gains, exactGains] = [gainsOf(choice, within), gainsOf(choice, exact)];
   const isExact = Math.max(...exactGains) >= Math.max(...gains);
-  const most = isExact ? exact : within;
-  const kept = order ?? worthwhile(isExact ? exactGains : gains);
-  if (kept >= most.order) return most;
-  return isExact ? readOut(choice, firstStates(within, kept)) : predictiveState(choice.factors, choice.layout, kept);
+  const told = isExact ? exactGains : gains;
+  const kept = Math.min(order ?? worthwhile(told), within.order);
+  const found = isExact
+    ? readOut(choice, firstStates(within, kept))
+    : predictiveState(choice.factors, choice.layout, kept);
+  // What each state is worth as those windows have it: within the factors it would be flattered.
+  return { ...found, explained: told.slice(0, kept).map((gain, k) => gain - (k === 0 ? 0 : told[k - 1])) };
 }
 
 /** The first states alone: they are the same whatever their number. */
@@ -83,7 +86,7 @@ function readOut({ frames, past, shape, learn }: Choice, state: PredictiveState)
   return { ...state, forecastMap: solved.slice(0, future * d), transition: matrix, radius };
 }
 
-/** Squared error saved by the first 1, 2, … states. */
+/** Squared error saved by the first 1, 2, … states, as a share of all energy that came. */
 function gainsOf({ frames, past, shape, learn, choose }: Choice, most: PredictiveState): Float64Array {
   const { window, horizon, numbers } = shape;
   const d = most.order;
@@ -91,6 +94,7 @@ function gainsOf({ frames, past, shape, learn, choose }: Choice, most: Predictiv
   const phi = new Float64Array(past.length);
   const x = new Float64Array(d);
   const left = new Float64Array(horizon * numbers);
+  let energy = 0;
   frames.visit(
     window + horizon,
     learn,
@@ -99,6 +103,7 @@ function gainsOf({ frames, past, shape, learn, choose }: Choice, most: Predictiv
       past.write(row, 0, phi);
       left.set(row.subarray(window * numbers));
       mapStates(most, phi, x);
+      for (const value of left) energy += value * value;
       for (let k = 0; k < d; k++) {
         for (let c = 0; c < left.length; c++) {
           const told = most.forecastMap[c * d + k] * x[k];
@@ -110,7 +115,7 @@ function gainsOf({ frames, past, shape, learn, choose }: Choice, most: Predictiv
     Math.max(1, Math.floor((choose - learn) / SAMPLE)),
   );
   for (let k = 1; k < d; k++) gains[k] += gains[k - 1];
-  return gains;
+  return gains.map((gain) => (energy > 0 ? gain / energy : 0));
 }
 
 /** The fewest that bring nearly what the best number of them brings; 1 where none brings anything. */

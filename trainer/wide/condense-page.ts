@@ -83,7 +83,7 @@ function stateTable({ record, explained, shape }: Condenser, score: CondenseScor
 
 /** Shares small and large, as people read them. */
 function share(value: number): string {
-  return value < 0.095 ? `${plainNumber(100 * value)} %` : percent(value);
+  return Math.abs(value) < 0.095 ? `${plainNumber(100 * value)} %` : percent(value);
 }
 
 function skillCell(score: CondenseScore | null, at: number): string {

@@ -69,7 +69,7 @@ export interface Condenser {
   readonly transition: Float64Array;
   /** (rank) falling. */
   readonly singularValues: Float64Array;
-  /** (order) share of the coming windows' energy that each state forecasts. */
+  /** (order) share of the energy to come that each state forecast, in the windows that decided. */
   readonly explained: Float64Array;
 }
 
