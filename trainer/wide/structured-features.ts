@@ -3,7 +3,9 @@
  * Walsh-Hadamard transforms, so that a hundred thousand features of thousands of inputs cost what a few hundred plain ones
  * do. Two published constructions; `createFeatures` takes the one that measured best.
  *
- * Both work on blocks of n inputs, n the least power of two that holds them, zeros behind; a block gives n frequencies.
+ * Both work on blocks of n inputs, n the least power of two that holds them, zeros behind; a block gives n frequencies. Single
+ * precision throughout: a feature errs by some 10⁻⁶ of its crest where phases are of a few turns, a thousandth of what random
+ * features of any affordable count stray from their kernel.
  */
 import { checkShape, type FeatureMap, type FeatureShape } from './feature-map.ts';
 import { plainFeatures } from './plain-features.ts';

@@ -49,6 +49,28 @@ describe.each(FEATURE_KINDS)('%s features', (kind) => {
     expect(out).toEqual(expected);
   });
 
+  test('is a cosine and a sine of straight lines, to single precision', () => {
+    const map = createFeatures({ inputs: 64, outputs: 256, width: 4, seed: 2 }, kind);
+    const crest = Math.sqrt(1 / 128);
+    const out = new Float32Array(256);
+    // Frequencies read off unit vectors: less than half a turn each at that width.
+    const frequencies = Array.from({ length: 64 }, (_, i) => {
+      map.apply(
+        Float64Array.from({ length: 64 }, (_, k) => (k === i ? 1 : 0)),
+        out,
+      );
+      return Array.from({ length: 128 }, (_, j) => Math.atan2(out[128 + j], out[j]));
+    });
+    const x = normals(64, 7).map((value) => 4 * value);
+    map.apply(x, out);
+    for (let j = 0; j < 128; j++) {
+      const phase = x.reduce((sum, value, i) => sum + value * frequencies[i][j], 0);
+      // Phases of some ten radians, through three transforms of six roundings each; frequencies known to 2e-7 each.
+      expect(Math.abs(out[j] - crest * Math.cos(phase))).toBeLessThan(2e-5 * crest);
+      expect(Math.abs(out[128 + j] - crest * Math.sin(phase))).toBeLessThan(2e-5 * crest);
+    }
+  });
+
   test('a shape no map can have is refused', () => {
     expect(() => createFeatures({ ...shape, outputs: 301 }, kind)).toThrow('outputs: expected an even number');
     expect(() => createFeatures({ ...shape, inputs: 0 }, kind)).toThrow('inputs: expected 1 or more');
