@@ -80,8 +80,10 @@ export interface OpenRun {
   readonly ticks: number;
   /** (nc) u at the last tick. */
   readonly level: Float64Array;
-  /** (nc) of (at most reach): the last changes, the newest last. */
+  /** (nc) of (as far as lags are worked out tick by tick): the last changes, the newest last. */
   readonly changes: readonly Float64Array[];
+  /** (nc) of (an eighth of the reach): the changes thinned to every eighth tick, where lags reach further. */
+  readonly thinned: readonly Float64Array[];
 }
 
 /** Readings that wait for their next, and what is known of those before. */

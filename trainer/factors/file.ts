@@ -13,7 +13,7 @@
  *
  * The head names the site and all sizes. The body has, in this order: offsets (nc); the sums as `SUM_ARRAYS` lists them; of each
  * end: weight, isThere (nc), level (nc), changes (nc × places); of the open run, where there is one: isThere (nc), level (nc),
- * changes (nc × kept); of what waits: last (nc), gap (nc), values (nc × waiting), isExcluded (waiting), watches (ny × 21).
+ * changes (nc × kept), thinned (nc × thinned); of what waits: last (nc), gap (nc), values (nc × waiting), isExcluded (waiting), watches (ny × 21).
  */
 import { type Site, schemaHash, sha256, toHex } from '@stillwell/protocol';
 import { TrainError } from '../errors.ts';
@@ -34,7 +34,7 @@ const ANEW = 'run fit on the whole history to write it anew';
 type Head = Omit<Factors, 'offsets' | 'sums' | 'ends' | 'open' | 'waiting'> & {
   readonly count: number;
   readonly ends: number;
-  readonly open: { readonly ticks: number; readonly kept: number } | null;
+  readonly open: { readonly ticks: number; readonly kept: number; readonly thinned: number } | null;
   readonly waiting: number;
 };
 
@@ -53,14 +53,14 @@ export function encodeFactors(factors: Factors): Uint8Array {
     ...shape,
     count: sums.count,
     ends: ends.length,
-    open: open && { ticks: open.ticks, kept: open.changes[0].length },
+    open: open && { ticks: open.ticks, kept: open.changes[0].length, thinned: open.thinned[0].length },
     waiting: waiting.isExcluded.length,
   };
   const json = new TextEncoder().encode(JSON.stringify(head));
   const headBytes = 8 * Math.ceil(json.length / 8);
   const body: (Float64Array | Uint8Array)[] = [offsets, ...SUM_ARRAYS.map((key) => sums[key])];
   for (const { weight, isThere, level, changes } of ends) body.push(Float64Array.of(weight), isThere, level, changes);
-  if (open !== null) body.push(open.isThere, open.level, ...open.changes);
+  if (open !== null) body.push(open.isThere, open.level, ...open.changes, ...open.thinned);
   body.push(waiting.last, waiting.gap, ...waiting.values, waiting.isExcluded, ...waiting.watches);
   const numbers = body.reduce((sum, part) => sum + part.length, 0);
   const bytes = new Uint8Array(HEAD_AT + headBytes + 8 * numbers);
@@ -145,6 +145,7 @@ function fromParts(head: Head, body: Float64Array): Factors {
     isThere: Uint8Array.from(next(channels)),
     level: next(channels),
     changes: rows(openHead.kept),
+    thinned: rows(openHead.thinned),
   };
   const waiting: Waiting = {
     last: next(channels),

@@ -9,13 +9,20 @@
  */
 import { MAX_HORIZON } from '@stillwell/protocol';
 import { createKernels, type Kernels } from '../kernels/kernels.ts';
-import { type LagGrid, sharesOf } from './lag-grid.ts';
+import { type LagGrid, type Panel, sharesOf } from './lag-grid.ts';
 
 /** Spectra of one transform length, added up over blocks. */
 interface Spectra {
   readonly size: number;
   /** (nc × nc) pairs i·nc + j, channel i the later; each (size / 2 + 1) real parts, then as many imaginary ones. */
   readonly pairs: readonly Float64Array[];
+}
+
+/** Which lags a sequence's entries are, and what of each counts. */
+export interface Spread {
+  readonly start: number;
+  readonly stride: number;
+  readonly share: (lag: number) => number;
 }
 
 /** A transform for short stretches is this much shorter than the next longer one, so that there are few accumulators. */
@@ -27,17 +34,17 @@ const TILE = 512;
 const ROWS = 256;
 
 /**
- * Length of the longest transform for a reach: a quarter of it at least is new ticks, and the shortest run that counts fits.
+ * Length of the longest transform for a reach: a third of it at least is new ticks, and the shortest run that counts fits.
  *
  * shapes  none
  * units   ticks
  * throws  nothing
- * source  the work a tick is least at half; a quarter keeps the accumulators of a reach just above a power of two small
+ * source  the work a tick is least at a half; a third keeps the accumulators of a reach above a power of two small
  * cost    trivial
  */
 export function longestTransform(reach: number): number {
   let size = SHORTEST;
-  while (3 * size < 4 * reach || size < reach + MAX_HORIZON + 2) size *= 2;
+  while (2 * size < 3 * reach || size < reach + MAX_HORIZON + 2) size *= 2;
   return size;
 }
 
@@ -48,8 +55,10 @@ export class LagSums {
   readonly #reach: number;
   readonly #kernels: Kernels;
   readonly #spectra: Spectra[] = [];
+  readonly #how: Spread;
 
-  constructor(channels: number, grid: LagGrid, reach: number) {
+  constructor(channels: number, grid: LagGrid, reach: number, how: Spread) {
+    this.#how = how;
     this.#channels = channels;
     this.#grid = grid;
     this.#reach = reach;
@@ -137,7 +146,7 @@ export class LagSums {
         pair.set(x);
       }
       kernels.release(mark);
-      this.spread(pairs, size === longestTransform(this.#reach) ? this.#reach + 1 : size / 2, into);
+      this.spread(pairs, size === longestTransform(this.#reach) ? this.#reach + 1 : size / 2, into, this.#how);
       for (const pair of pairs) pair.fill(0);
     }
   }
@@ -151,34 +160,55 @@ export class LagSums {
    * source  as `spreadOver`
    * cost    O(rows length points)
    */
-  spread(pairs: readonly Float64Array[], length: number, into: Float64Array): void {
-    const kernels = this.#kernels;
-    const { dense, panels, lags } = this.#grid;
+  spread(pairs: readonly Float64Array[], length: number, into: Float64Array, how: Spread): void {
+    const { dense, lags } = this.#grid;
+    const { start, stride, share } = how;
     const places = lags.length;
-    pairs.forEach((pair, n) => {
-      for (let lag = 0; lag < Math.min(dense, length); lag++) into[n * places + lag] += pair[lag];
-    });
-    const mark = kernels.mark();
-    for (const panel of panels) {
-      const { from, to, place, count } = panel;
-      if (from >= length) break;
-      const sums = kernels.alloc64(pairs.length * count);
-      const rows = kernels.alloc64(ROWS * pairs.length);
-      const shares = kernels.alloc64(ROWS * count);
-      for (let lag = from; lag < Math.min(to, length); lag += ROWS) {
-        const some = Math.min(ROWS, to - lag, length - lag);
-        for (let r = 0; r < some; r++) {
-          sharesOf(panel, lag + r, shares.subarray(r * count, (r + 1) * count));
-          for (let n = 0; n < pairs.length; n++) rows[r * pairs.length + n] = pairs[n][lag + r];
-        }
-        const a = rows.subarray(0, some * pairs.length);
-        kernels.productAdd(sums, a, shares.subarray(0, some * count), some, pairs.length, count);
-      }
-      for (let n = 0; n < pairs.length; n++) {
-        for (let q = 0; q < count; q++) into[n * places + place + q] += sums[n * count + q];
-      }
-      kernels.release(mark);
+    for (let at = 0; at < length && start + at * stride < dense; at++) {
+      const lag = start + at * stride;
+      const counts = share(lag);
+      if (counts > 0) for (let n = 0; n < pairs.length; n++) into[n * places + lag] += counts * pairs[n][at];
     }
+    for (const panel of this.#grid.panels) {
+      const from = Math.max(0, Math.ceil((panel.from - start) / stride));
+      const to = Math.min(length, Math.ceil((panel.to - start) / stride));
+      const counts = (at: number): number => share(start + at * stride);
+      // Shares only rise or only fall, so that a panel whose ends have none has none.
+      if (to <= from || (counts(from) === 0 && counts(to - 1) === 0)) continue;
+      this.#spreadPanel(pairs, panel, from, to, into, how);
+    }
+  }
+
+  #spreadPanel(
+    pairs: readonly Float64Array[],
+    panel: Panel,
+    from: number,
+    to: number,
+    into: Float64Array,
+    { start, stride, share }: Spread,
+  ): void {
+    const kernels = this.#kernels;
+    const { place, count } = panel;
+    const places = this.#grid.lags.length;
+    const mark = kernels.mark();
+    const sums = kernels.alloc64(pairs.length * count);
+    const rows = kernels.alloc64(ROWS * pairs.length);
+    const shares = kernels.alloc64(ROWS * count);
+    for (let first = from; first < to; first += ROWS) {
+      const some = Math.min(ROWS, to - first);
+      for (let r = 0; r < some; r++) {
+        const lag = start + (first + r) * stride;
+        const counts = share(lag);
+        sharesOf(panel, lag, shares.subarray(r * count, (r + 1) * count));
+        for (let n = 0; n < pairs.length; n++) rows[r * pairs.length + n] = counts * pairs[n][first + r];
+      }
+      const a = rows.subarray(0, some * pairs.length);
+      kernels.productAdd(sums, a, shares.subarray(0, some * count), some, pairs.length, count);
+    }
+    for (let n = 0; n < pairs.length; n++) {
+      for (let q = 0; q < count; q++) into[n * places + place + q] += sums[n * count + q];
+    }
+    kernels.release(mark);
   }
 
   /**

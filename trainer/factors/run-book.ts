@@ -4,6 +4,7 @@
  * teaches nothing and leaves no trace.
  */
 import type { OpenRun, RunEnd, RunSums } from './factors.ts';
+import { FarLags, nearReach, nearSpread, type RunRows } from './far-lags.ts';
 import type { LagGrid } from './lag-grid.ts';
 import { LagSums, longestTransform } from './lag-sums.ts';
 import { addHeads, addLevels, type BlockOfRun, emptySums, type MutableSums, scaleSums } from './run-sums.ts';
@@ -30,7 +31,11 @@ export interface Books {
 export class RunBook {
   readonly #shape: BookShape;
   readonly #blockTicks: number;
+  /** Lags up to it are worked out tick by tick. */
+  readonly #near: number;
   readonly #lags: LagSums;
+  /** Further ones; null where there are none. */
+  readonly #far: FarLags | null;
   readonly #sums: MutableSums;
   #ends: RunEnd[];
   /** (nc) of (reach + block): changes of the open run, the newest last; `#filled` of them, the last `#fresh` not yet summed. */
@@ -47,14 +52,15 @@ export class RunBook {
   #first: Float64Array;
 
   constructor(shape: BookShape, from: Books | null) {
-    const { channels, grid, reach } = shape;
+    const { channels, grid, reach, halfLifeTicks } = shape;
     this.#shape = shape;
-    const size = longestTransform(reach);
-    this.#blockTicks = size - reach;
-    this.#lags = new LagSums(channels, grid, reach);
+    this.#near = nearReach(reach);
+    this.#blockTicks = longestTransform(this.#near) - this.#near;
+    this.#lags = new LagSums(channels, grid, this.#near, nearSpread(reach));
+    this.#far = this.#near < reach ? new FarLags(channels, grid, reach, halfLifeTicks) : null;
     this.#sums = emptySums(channels, grid.lags.length, shape.longestHorizon, from?.sums ?? null);
     this.#ends = [...(from?.ends ?? [])];
-    const room = reach + this.#blockTicks;
+    const room = this.#near + this.#blockTicks;
     this.#changes = Array.from({ length: channels }, () => new Float64Array(room));
     this.#levels = Array.from({ length: channels }, () => new Float64Array(room));
     this.#level = new Float64Array(channels);
@@ -89,6 +95,7 @@ export class RunBook {
     const isKept = this.#sumUp();
     if (isKept) {
       this.#ends.push(this.#endOfRun());
+      this.#far?.close(this.#rows());
       if (this.#ends.length > this.#shape.mostEnds) this.#ends.shift();
     }
     this.#isThere = null;
@@ -105,9 +112,14 @@ export class RunBook {
   /** All of it so far; the open run goes on. */
   read(): Books {
     const isKept = this.#isThere !== null && this.#sumUp();
+    // As if the run ended now, since sums are over ended runs; what that adds is taken back as after a restart.
+    if (isKept) this.#far?.addRest(this.#rows(), 1);
     this.#lags.drain(this.#sums.lagged);
+    this.#far?.drain(this.#sums.lagged);
     const ends = isKept ? [...this.#ends, this.#endOfRun()] : this.#ends;
-    return { sums: this.#sums.copy(), ends: [...ends], open: this.#openRun() };
+    const books = { sums: this.#sums.copy(), ends: [...ends], open: this.#openRun() };
+    if (isKept) this.#far?.addRest(this.#rows(), -1);
+    return books;
   }
 
   #takeChannel(values: Float64Array, c: number, from: number, count: number): void {
@@ -127,16 +139,15 @@ export class RunBook {
 
   /** Keeps the last `reach` changes in front of what comes. */
   #makeRoom(): void {
-    const { reach } = this.#shape;
     if (this.#filled < this.#changes[0].length) return;
-    const drop = this.#filled - reach - this.#fresh;
+    const drop = this.#filled - this.#near - this.#fresh;
     for (const row of [...this.#changes, ...this.#levels]) row.copyWithin(0, drop, this.#filled);
     this.#filled -= drop;
   }
 
   /** Sums up what is fresh; false where the run is too short to count, and stays fresh. */
   #sumUp(): boolean {
-    const { channels, longestHorizon, halfLifeTicks, reach } = this.#shape;
+    const { channels, longestHorizon, halfLifeTicks } = this.#shape;
     if (this.#ticks < longestHorizon + 2) return false;
     const count = this.#fresh;
     if (count === 0) return true;
@@ -154,12 +165,13 @@ export class RunBook {
     };
     addLevels(this.#sums, block, channels);
     if (block.firstTick === 0) addHeads(this.#sums, block, channels, longestHorizon);
-    const before = Math.min(start, reach);
+    const before = Math.min(start, this.#near);
     const earlier = this.#changes.map((row) => row.subarray(start - before, this.#filled));
     const later =
       weights === null ? block.changes : block.changes.map((row) => row.map((value, k) => value * weights[k]));
     this.#lags.add(earlier, later);
     this.#fresh = 0;
+    this.#far?.take(this.#rows());
     return true;
   }
 
@@ -168,6 +180,7 @@ export class RunBook {
     if (halfLifeTicks === null || ticks === 0) return;
     const factor = 2 ** (-ticks / halfLifeTicks);
     this.#lags.scale(factor);
+    this.#far?.scale(factor);
     scaleSums(this.#sums, factor);
     this.#ends = this.#ends.map((end) => ({ ...end, weight: end.weight * factor }));
   }
@@ -175,20 +188,26 @@ export class RunBook {
   #endOfRun(): RunEnd {
     const { grid, reach, channels } = this.#shape;
     const changes = new Float64Array(channels * grid.lags.length);
-    const from = Math.max(0, this.#filled - reach - 1);
+    const from = Math.max(0, this.#filled - this.#near);
     const byAge = this.#changes.map((row) => row.slice(from, this.#filled).reverse());
-    this.#lags.spread(byAge, byAge[0].length, changes);
+    this.#lags.spread(byAge, byAge[0].length, changes, nearSpread(reach));
+    this.#far?.spreadByAge(this.#ticks, changes);
     return { weight: 1, isThere: this.#isThere!.slice(), level: this.#level.slice(), changes };
+  }
+
+  #rows(): RunRows {
+    return { changes: this.#changes, filled: this.#filled, ticks: this.#ticks };
   }
 
   #openRun(): OpenRun | null {
     if (this.#isThere === null || this.#ticks === 0) return null;
-    const kept = Math.min(this.#filled, Math.max(this.#shape.reach, this.#fresh));
+    const kept = Math.min(this.#filled, Math.max(this.#near, this.#fresh));
     return {
       isThere: this.#isThere.slice(),
       ticks: this.#ticks,
       level: this.#level.slice(),
       changes: this.#changes.map((row) => row.slice(this.#filled - kept, this.#filled)),
+      thinned: this.#far?.kept() ?? this.#changes.map(() => new Float64Array(0)),
     };
   }
 
@@ -209,6 +228,9 @@ export class RunBook {
       }
       this.#first[c] = level;
     });
+    if (!isKept || this.#far === null) return;
+    this.#far.restore(open.thinned, open.ticks);
+    this.#far.addRest(this.#rows(), -1);
   }
 }
 

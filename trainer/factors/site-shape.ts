@@ -16,7 +16,9 @@ const HORIZONS = 16;
 const MEMORIES = 12;
 const OTHER_MEMORIES = 8;
 /** Bytes of the spectra while gathering; many channels reach less far, as their banks do. */
-const SPECTRA_BYTES = 64 * 1024 * 1024;
+const SPECTRA_BYTES = 80 * 1024 * 1024;
+/** Numbers of a pair's spectra where lags are shared out. */
+const SHARED_NUMBERS = 2 * 65_536;
 /** As when learning from a history: a gap of this many ticks is long, whatever the horizon. */
 const LEAST_LONG_GAP = 6;
 
@@ -37,7 +39,10 @@ export function shapeOf(site: Site, halfLifeTicks: number | null): FactorsShape 
   const slowest = Math.max(PERIODS * (isDaily ? day : LONGEST_PEAK), HORIZONS * horizon);
   const other = OTHER_PERIODS * Math.max(LONGEST_PEAK, 7 * day <= LONGEST_PERIOD ? 7 * day : 0);
   const rounds = [7 * day, day].filter((ticks) => ticks <= MAX_ROUND_TICKS && ticks >= horizon);
-  const transform = 2 ** Math.floor(Math.log2(SPECTRA_BYTES / 8 / (channels.length * channels.length)));
+  const wanted = Math.max(MEMORIES * slowest, OTHER_MEMORIES * other);
+  // With near and far lags shared out, every reach takes about as much; what does not fit gets one transform that does.
+  const each = SPECTRA_BYTES / 8 / (channels.length * channels.length);
+  const most = each >= SHARED_NUMBERS ? wanted : Math.max(1024, (2 / 3) * 2 ** Math.floor(Math.log2(each)));
   return Object.freeze({
     site: site.site,
     tickMs,
@@ -46,7 +51,7 @@ export function shapeOf(site: Site, halfLifeTicks: number | null): FactorsShape 
     signalCount: site.signals.length,
     schema: toHex(schemaHash(site)),
     halfLifeTicks,
-    reach: Math.min(Math.max(MEMORIES * slowest, OTHER_MEMORIES * other), Math.max(0.75 * transform, 1024)),
+    reach: Math.floor(Math.min(wanted, most)),
     longestHorizon: Math.min(MAX_HORIZON, 2 * horizon),
     longestRound: rounds[0] ?? 0,
     longGapTicks: Math.max(LEAST_LONG_GAP, horizon),
