@@ -43,6 +43,7 @@ describe('what it says', () => {
       history: { rows: 960, ticks: 960, readings: 2880, isExact: true },
       fit: { way: 'in memory', shape: { signals: 3, horizon: 24 } },
       frames: { frames: 40, windows: 36, features: 60, gram: { entries: 1296 }, covariance: { entries: 3600 } },
+      condense: { numbers: 12, rank: 32 },
       has_simd: expect.any(Boolean),
     });
   });

@@ -5,7 +5,7 @@ import { hasSimd } from '../kernels/load.ts';
 import { several, share, wholeNumber } from '../option-values.ts';
 import { FIT_DEFAULTS } from '../pipeline.ts';
 import { readSite } from '../site-file.ts';
-import { readFrames } from '../sizing/frames-size.ts';
+import { condenseSize, readFrames } from '../sizing/frames-size.ts';
 import { historyExtent } from '../sizing/history-extent.ts';
 import { predictFit } from '../sizing/predict-fit.ts';
 import { probeSeconds } from '../sizing/probe.ts';
@@ -32,7 +32,7 @@ export function sizeCommand(): Command {
       'Says what a fit will take, before anything runs: ticks, memory, time, bundle; no history is read through.',
     )
     .option('--site <file>', 'site file')
-    .option('--history <files...>', 'history files', several)
+    .option('--history <files...>', 'files, folders and patterns, as for fit', several)
     .option('--frames <shape>', 'wide observations: count/length/window, or a .npy or Parquet file')
     .option('--window <frames>', 'with a file: frames in a window, 1 when absent', wholeNumber(1))
     .option('--time-zone <zone>', "zone of history times that carry none; the site's otherwise")
@@ -65,10 +65,11 @@ async function run(options: SizeOptions): Promise<void> {
   const isSimd = hasSimd();
   const fit = site === undefined || history === undefined ? null : await sizeFit(site, history, options);
   const wide = frames === undefined ? null : await readFrames(frames, options.window);
+  const condense = wide === null ? null : await condenseSize(wide);
   if (options.json) {
     const all = {
       ...(fit === null ? {} : fit),
-      ...(wide === null ? {} : { frames: wide }),
+      ...(wide === null ? {} : { frames: wide, condense }),
       free_bytes: freeBytes,
       has_simd: isSimd,
     };
@@ -77,7 +78,7 @@ async function run(options: SizeOptions): Promise<void> {
   }
   const parts = [
     ...(fit === null ? [] : [fitText(fit.site, fit.history, fit.fit, freeBytes)]),
-    ...(wide === null ? [] : [framesText(wide, freeBytes)]),
+    ...(wide === null || condense === null ? [] : [framesText(wide, condense, freeBytes)]),
     kernelText(isSimd),
   ];
   process.stdout.write(parts.join('\n'));

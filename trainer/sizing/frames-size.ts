@@ -1,6 +1,7 @@
 /** Observations that are wide: camera frames, spectra, bins of vibration, in windows of several. */
 import { statSync } from 'node:fs';
 import { TrainError } from '../errors.ts';
+import { BYTES } from './constants.ts';
 import { covarianceOf, gramOf, type Matrix } from './matrix-size.ts';
 
 const FLOAT32_BYTES = 4;
@@ -19,6 +20,31 @@ export interface FramesSize {
   readonly windowBytes: number;
   readonly covariance: Matrix;
   readonly gram: Matrix;
+}
+
+/** What `stillwell condense` makes of them with its defaults but for the window. */
+export interface CondenseSize {
+  /** Numbers that a frame is projected to. */
+  readonly numbers: number;
+  readonly horizon: number;
+  readonly rank: number;
+  /** Peak of the resident memory, however many frames there are. */
+  readonly peakBytes: number;
+}
+
+/** Defaults of `stillwell condense`. */
+const HORIZON = 16;
+const RANK = 32;
+
+/** Foresees it. */
+export async function condenseSize({ frameLength, window }: FramesSize): Promise<CondenseSize> {
+  const [{ learningBytes }, { DEFAULT_NUMBERS }] = await Promise.all([
+    import('../wide/condense-learn.ts'),
+    import('../wide/project-frames.ts'),
+  ]);
+  const numbers = Math.min(frameLength, DEFAULT_NUMBERS);
+  const shape = { frameLength, tickMs: 1, numbers, window, horizon: HORIZON, features: 0, seed: 1 };
+  return { numbers, horizon: HORIZON, rank: RANK, peakBytes: (BYTES.program as number) + learningBytes(shape, RANK) };
 }
 
 /** Counts. */

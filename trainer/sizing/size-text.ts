@@ -1,6 +1,6 @@
 /** What sizing found, for people: one sentence, then a table. */
 import { momentText, textTable } from '../text-table.ts';
-import type { FramesSize } from './frames-size.ts';
+import type { CondenseSize, FramesSize } from './frames-size.ts';
 import type { Extent } from './history-extent.ts';
 import type { FitPrediction } from './predict-fit.ts';
 
@@ -67,7 +67,7 @@ export function fitText(site: string, extent: Extent, fit: FitPrediction, freeBy
 }
 
 /** Wide observations. */
-export function framesText(size: FramesSize, freeBytes: number): string {
+export function framesText(size: FramesSize, condense: CondenseSize, freeBytes: number): string {
   const { frames, frameLength, window, windows, features, windowBytes, covariance, gram } = size;
   const worst = Math.min(covariance.bytes, gram.bytes);
   const rows = [
@@ -75,6 +75,10 @@ export function framesText(size: FramesSize, freeBytes: number): string {
     [
       'windows',
       `${countText(windows)} of ${countText(window)} frame(s): ${countText(features)} numbers each, ${sizeText(windowBytes)}`,
+    ],
+    [
+      'condense',
+      `${sizeText(condense.peakBytes)} at its peak, frames projected to ${condense.numbers} numbers, rank ${condense.rank}`,
     ],
     ['never formed', `covariance of the numbers, ${matrixText(covariance)}`],
     ['', `Gram matrix of the windows, ${matrixText(gram)}`],

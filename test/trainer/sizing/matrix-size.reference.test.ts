@@ -23,7 +23,7 @@ it('the same in windows of two seconds', () => {
   const size = framesSize(90_000, 76_800, 50);
   expect(size).toMatchObject({ windows: 89_951, features: 3_840_000, windowBytes: 15_360_000 });
   expect(size.covariance).toEqual({ rows: 3_840_000, entries: 14_745_600_000_000, bytes: 117_964_800_000_000 });
-  const said = framesText(size, 24e9);
+  const said = framesText(size, { numbers: 256, horizon: 16, rank: 32, peakBytes: 3e8 }, 24e9);
   expect(said).toContain('89,951 windows of 3,840,000 numbers');
   expect(said).toContain('64.7 GB, and 24.0 GB are free; neither is formed');
   expect(said).toContain('3,840,000 x 3,840,000: 1.47e+13 entries, 118 TB');
