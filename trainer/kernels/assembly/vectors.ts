@@ -70,39 +70,51 @@ export function spectraAdd64(
   }
 }
 
-/** x = f cos(x) on float32, in place; the arithmetic is told in trainer/kernels/cosines.ts. */
+/**
+ * x = f cos(x) on float32, in place; the arithmetic is told in trainer/kernels/cosines.ts. A block's angles, then its sines:
+ * in one loop there would be more constants than registers, which costs a third.
+ */
 export function cosines32(x: usize, f: f32, n: i32): void {
   const end = x + (<usize>(n & ~3) << 2);
-  for (; x < end; x += 16) v128.store(x, cosines4(v128.load(x), f));
+  for (; x < end; x += 1024) {
+    const last = end - x < 1024 ? end : x + 1024;
+    for (let at = x; at < last; at += 16) v128.store(at, angles(v128.load(at)));
+    for (let at = x; at < last; at += 16) v128.store(at, sines(v128.load(at), f));
+  }
   const left = n & 3;
   if (left == 0) return;
-  let last = v128.load32_zero(x);
-  if (left > 1) last = v128.load_lane<f32>(x + 4, last, 1);
-  if (left > 2) last = v128.load_lane<f32>(x + 8, last, 2);
-  last = cosines4(last, f);
-  v128.store_lane<f32>(x, last, 0);
-  if (left > 1) v128.store_lane<f32>(x + 4, last, 1);
-  if (left > 2) v128.store_lane<f32>(x + 8, last, 2);
+  x = end;
+  let rest = v128.load32_zero(x);
+  if (left > 1) rest = v128.load_lane<f32>(x + 4, rest, 1);
+  if (left > 2) rest = v128.load_lane<f32>(x + 8, rest, 2);
+  rest = sines(angles(rest), f);
+  v128.store_lane<f32>(x, rest, 0);
+  if (left > 1) v128.store_lane<f32>(x + 4, rest, 1);
+  if (left > 2) v128.store_lane<f32>(x + 8, rest, 2);
 }
 
-function cosines4(x: v128, f: f32): v128 {
-  const low = toSine(f64x2.promote_low_f32x4(x));
-  const high = toSine(f64x2.promote_low_f32x4(v128.shuffle<f64>(x, x, 1, 1)));
-  const r = v128.shuffle<f64>(f32x4.demote_f64x2_zero(low), f32x4.demote_f64x2_zero(high), 0, 2);
+/** The angles in [-π/2, π/2] whose sines are the cosines of x: π/2 - |x less whole turns|. */
+function angles(x: v128): v128 {
+  const low = part(f64x2.promote_low_f32x4(x));
+  const high = part(f64x2.promote_low_f32x4(v128.shuffle<f64>(x, x, 1, 1)));
+  return v128.shuffle<f64>(f32x4.demote_f64x2_zero(low), f32x4.demote_f64x2_zero(high), 0, 2);
+}
+
+function part(x: v128): v128 {
+  const t = f64x2.mul(x, f64x2.splat(TURNS));
+  const magic = f64x2.splat(ROUNDING);
+  const rest = f64x2.sub(t, f64x2.sub(f64x2.add(t, magic), magic));
+  return f64x2.mul(f64x2.sub(f64x2.splat(0.25), f64x2.abs(rest)), f64x2.splat(TWO_PI));
+}
+
+/** f times the sines. */
+function sines(r: v128, f: f32): v128 {
   const u = f32x4.mul(r, r);
   let p = f32x4.splat(SINE_9);
   p = f32x4.add(f32x4.mul(p, u), f32x4.splat(SINE_7));
   p = f32x4.add(f32x4.mul(p, u), f32x4.splat(SINE_5));
   p = f32x4.add(f32x4.mul(p, u), f32x4.splat(SINE_3));
   return f32x4.mul(f32x4.add(r, f32x4.mul(r, f32x4.mul(u, p))), f32x4.splat(f));
-}
-
-/** The angle in [-π/2, π/2] whose sine is the cosine of x: π/2 - |x less whole turns|. */
-function toSine(x: v128): v128 {
-  const t = f64x2.mul(x, f64x2.splat(TURNS));
-  const magic = f64x2.splat(ROUNDING);
-  const part = f64x2.sub(t, f64x2.sub(f64x2.add(t, magic), magic));
-  return f64x2.mul(f64x2.sub(f64x2.splat(0.25), f64x2.abs(part)), f64x2.splat(TWO_PI));
 }
 
 const TURNS: f64 = 0.15915494309189535;
