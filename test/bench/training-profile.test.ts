@@ -1,4 +1,4 @@
-/** Own time out of a sampling profile: by file, by function, the largest first, all of it accounted for. */
+/** Own time out of a sampling profile: by folder, file and function, the largest first, all of it accounted for. */
 import { mkdtempSync, rmSync, writeFileSync } from 'node:fs';
 import { tmpdir } from 'node:os';
 import { join } from 'node:path';
@@ -10,7 +10,7 @@ const node = (id: number, functionName: string, url: string, lineNumber: number)
   callFrame: { functionName, url, lineNumber },
 });
 
-test('a profile is summed by file and by function', () => {
+test('a profile is summed by folder, by file and by function', () => {
   const folder = mkdtempSync(join(tmpdir(), 'stillwell-profile-'));
   try {
     const nodes = [
@@ -27,6 +27,9 @@ test('a profile is summed by file and by function', () => {
     const place = /^ +(\d+) ms +([\d.]+) % {2}(.+)$/;
     const read = lines.map((line) => place.exec(line)!.slice(1));
     expect(read).toEqual([
+      ['8', '80.0', 'linalg'],
+      ['2', '15.0', '(garbage collector)'],
+      ['1', '5.0', '(root)'],
       ['8', '80.0', 'linalg/products.js'],
       ['2', '15.0', '(garbage collector)'],
       ['1', '5.0', '(root)'],

@@ -1,4 +1,4 @@
-/** Where the time of a run went, from the sampling profiler of the engine (`node --cpu-prof`): own time by source file and by function. */
+/** Where the time of a run went, from the sampling profiler of the engine (`node --cpu-prof`): own time by folder, by file and by function. */
 import { readdirSync, readFileSync } from 'node:fs';
 import { join } from 'node:path';
 
@@ -13,37 +13,45 @@ interface CpuProfile {
   readonly timeDeltas: readonly number[];
 }
 
-const MOST_LINES = 12;
+const MOST_LINES = 20;
 
 /** Lines for people: one profile file a thread. */
 export function profileSummary(folder: string): string[] {
   const files = readdirSync(folder).filter((file) => file.endsWith('.cpuprofile'));
   return files.flatMap((file) => {
     const profile = JSON.parse(readFileSync(join(folder, file), 'utf8')) as CpuProfile;
-    const [byFile, byFunction] = [new Map<string, number>(), new Map<string, number>()];
-    const total = addUp(profile, byFile, byFunction);
+    const spent = addUp(profile);
     return [
-      `profile ${join(folder, file)}: ${(total / 1e3).toFixed(0)} ms`,
-      ...largest(byFile, total).map((line) => `  ${line}`),
-      ...largest(byFunction, total).map((line) => `    ${line}`),
+      `profile ${join(folder, file)}: ${(spent.total / 1e3).toFixed(0)} ms`,
+      ...largest(spent.byFolder, spent.total).map((line) => `  ${line}`),
+      ...largest(spent.byFile, spent.total).map((line) => `    ${line}`),
+      ...largest(spent.byFunction, spent.total).map((line) => `      ${line}`),
     ];
   });
 }
 
-/** Own microseconds by file and by function; returns their sum. */
-function addUp(profile: CpuProfile, byFile: Map<string, number>, byFunction: Map<string, number>): number {
+interface Spent {
+  total: number;
+  readonly byFolder: Map<string, number>;
+  readonly byFile: Map<string, number>;
+  readonly byFunction: Map<string, number>;
+}
+
+/** Own microseconds. */
+function addUp(profile: CpuProfile): Spent {
   const places = new Map(profile.nodes.map(({ id, callFrame }) => [id, callFrame]));
-  let total = 0;
+  const spent: Spent = { total: 0, byFolder: new Map(), byFile: new Map(), byFunction: new Map() };
+  const add = (to: Map<string, number>, name: string, us: number): void => void to.set(name, (to.get(name) ?? 0) + us);
   profile.samples.forEach((id, k) => {
     const { functionName, url, lineNumber } = places.get(id)!;
-    const spent = profile.timeDeltas[k]!;
+    const us = profile.timeDeltas[k]!;
     const file = url === '' ? functionName || '(engine)' : url.replace(/^.*\/(dist|node_modules)\//, '');
-    const name = url === '' ? file : `${functionName || '(top level)'} ${file}:${lineNumber + 1}`;
-    byFile.set(file, (byFile.get(file) ?? 0) + spent);
-    byFunction.set(name, (byFunction.get(name) ?? 0) + spent);
-    total += spent;
+    add(spent.byFolder, file.startsWith('node:') ? 'node:' : file.split('/')[0]!, us);
+    add(spent.byFile, file, us);
+    add(spent.byFunction, url === '' ? file : `${functionName || '(top level)'} ${file}:${lineNumber + 1}`, us);
+    spent.total += us;
   });
-  return total;
+  return spent;
 }
 
 function largest(spent: ReadonlyMap<string, number>, total: number): string[] {
