@@ -52,10 +52,12 @@ function aboutMeans({ origins, sum, gram, targetSum, cross }: FeatureMoments): {
 } {
   const D = sum.length;
   const m = targetSum.length;
-  return {
-    gram: gram.map((value, k) => value - (sum[Math.floor(k / D)] * sum[k % D]) / origins),
-    cross: cross.map((value, k) => value - (sum[Math.floor(k / m)] * targetSum[k % m]) / origins),
-  };
+  const centred = { gram: gram.slice(), cross: cross.slice() };
+  for (let j = 0; j < D; j++) {
+    for (let b = 0; b < D; b++) centred.gram[j * D + b] -= (sum[j] * sum[b]) / origins;
+    for (let c = 0; c < m; c++) centred.cross[j * m + c] -= (sum[j] * targetSum[c]) / origins;
+  }
+  return centred;
 }
 
 /** What makes the map right on average. */

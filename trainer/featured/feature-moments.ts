@@ -5,6 +5,7 @@
 import type { FeatureTensors } from '@stillwell/protocol';
 import { SUMMARY_LIMIT, scaledFeatures } from '@stillwell/runtime/filter';
 import { addLowerGram } from '../linalg/gram.ts';
+import { addTransposed, multiply } from '../linalg/products.ts';
 import type { Origins } from './origins.ts';
 
 /** What the features see, and how many there are: the part of the bundle's section that is chosen, not learned. */
@@ -48,13 +49,10 @@ export function gatherFeatures(origins: Origins, setting: FeatureSetting, from: 
     const rows = Math.min(BLOCK, to - start);
     for (let k = 0; k < rows; k++) evaluate(start + k, block, k * D);
     addLowerGram(moments.gram, block, rows, D);
+    addTransposed(moments.cross, block, targets.subarray(start * m), D, rows, m);
     for (let k = 0; k < rows; k++) {
       const aim = (start + k) * m;
-      for (let j = 0; j < D; j++) {
-        const phi = block[k * D + j];
-        moments.sum[j] += phi;
-        for (let c = 0; c < m; c++) moments.cross[j * m + c] += phi * targets[aim + c];
-      }
+      for (let j = 0; j < D; j++) moments.sum[j] += block[k * D + j];
       for (let c = 0; c < m; c++) {
         moments.targetSum[c] += targets[aim + c];
         moments.square[c] += targets[aim + c] * targets[aim + c];
@@ -167,16 +165,11 @@ export function featureError(moments: FeatureMoments, { weights, offset }: Featu
   const D = sum.length;
   const m = offset.length;
   const out = new Float64Array(m);
-  const pushed = new Float64Array(m);
+  const pushed = multiply(gram, weights, D, D, m);
   const mean = new Float64Array(m);
   for (let j = 0; j < D; j++) {
-    pushed.fill(0);
-    for (let b = 0; b < D; b++) {
-      const g = gram[j * D + b];
-      for (let c = 0; c < m; c++) pushed[c] += g * weights[b * m + c];
-    }
     for (let c = 0; c < m; c++) {
-      out[c] += weights[j * m + c] * (pushed[c] - 2 * cross[j * m + c]);
+      out[c] += weights[j * m + c] * (pushed[j * m + c] - 2 * cross[j * m + c]);
       mean[c] += weights[j * m + c] * sum[j];
     }
   }

@@ -43,6 +43,27 @@ export function multiply(a: Float64Array, b: Float64Array, n: number, k: number,
  */
 export function multiplyTransposed(a: Float64Array, b: Float64Array, n: number, k: number, m: number): Float64Array {
   const out = new Float64Array(n * m);
+  addTransposed(out, a, b, n, k, m);
+  return out;
+}
+
+/**
+ * Adds A' B to a matrix, row after row of the factors.
+ *
+ * shapes  out (n × m); a (k × n), b (k × m), longer ones cut off; row-major
+ * units   as the factors'
+ * throws  nothing
+ * source  definition
+ * cost    n k m multiplications
+ */
+export function addTransposed(
+  out: Float64Array,
+  a: Float64Array,
+  b: Float64Array,
+  n: number,
+  k: number,
+  m: number,
+): void {
   let l = 0;
   for (; l + 3 < k; l += 4) {
     for (let i = 0; i < n; i += 2) {
@@ -55,7 +76,6 @@ export function multiplyTransposed(a: Float64Array, b: Float64Array, n: number, 
   for (; l < k; l++) {
     for (let i = 0; i < n; i++) addOne(out.subarray(i * m, i * m + m), b, l * m, m, a[l * n + i]);
   }
-  return out;
 }
 
 /**
