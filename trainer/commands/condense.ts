@@ -29,6 +29,8 @@ import { statesCsv } from '../wide/states-csv.ts';
 
 /** States tried where no number is asked for. */
 const MOST_STATES = 8;
+/** Long rows lie in one memory of the compiled kernels, whose addresses have 32 bits. */
+const MOST_BYTES = 4 * 2 ** 30;
 /** A row of states where frames come faster than a site's shortest tick. */
 const DEFAULT_EVERY_MS = 1000;
 
@@ -208,6 +210,8 @@ function say(
 }
 
 function shapeOf(options: CondenseOptions, { frameLength, tickMs }: Recording): CondenserShape {
+  if ((options.order ?? 1) > options.rank)
+    throw new TrainError('options', `--order: expected at most the ${options.rank} of --rank, got ${options.order}`);
   const numbers = Math.min(frameLength, options.projection ?? DEFAULT_NUMBERS);
   return {
     frameLength,
@@ -244,11 +248,11 @@ function requireMemory(shape: CondenserShape, rank: number): void {
   const needed = learningBytes(shape, rank);
   // A container's limit counts where there is one; without one it is 0 or larger than any machine.
   const limit = process.constrainedMemory() || Number.POSITIVE_INFINITY;
-  const free = Math.max(0, Math.min(freemem(), limit - process.memoryUsage.rss()));
+  const free = Math.max(0, Math.min(freemem(), limit - process.memoryUsage.rss(), MOST_BYTES));
   if (needed > free)
     throw new TrainError(
       'options',
-      `Learning this takes ${bytesText(needed)} of memory, and ${bytesText(free)} is free; ` +
+      `Learning this takes ${bytesText(needed)} of memory, and ${bytesText(free)} can be had; ` +
         'give a smaller --window, --horizon, --projection, --features or --rank',
       { details: { needed } },
     );

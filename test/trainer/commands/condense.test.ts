@@ -202,6 +202,13 @@ describe('refusals', () => {
       [...TIMES, '--features', '1000000', '--rank', '512'],
       'MiB of memory, and',
     ],
+    [
+      'more states than singular values',
+      frames,
+      8,
+      [...TIMES, '--order', '9', '--rank', '8'],
+      'at most the 8 of --rank',
+    ],
     ['a start without a zone', frames, 8, ['--start', '2026-03-01', '--tick', '1'], 'Expected a time with a zone'],
     ['a tick of nothing', frames, 8, ['--tick', '0'], 'above 0'],
     ['an odd number of features', frames, 8, [...TIMES, '--features', '7'], 'Expected an even number'],
