@@ -71,36 +71,6 @@ function chebyshev(q: number, count: number): number {
   return Math.cos((Math.PI * (q + 0.5)) / count);
 }
 
-/**
- * Spreads sequences by lag over a grid's places, adding to what is there.
- *
- * shapes  into (count × places), `from` (count) of lags 0, 1, … as far as they go
- * units   any; sums over `into` of smooth functions equal those over `from`
- * throws  nothing
- * source  barycentric interpolation: Berrut & Trefethen, SIAM Review 46 (2004), section 5
- * cost    O(count · lags · points of a panel)
- */
-export function spreadOver(grid: LagGrid, into: Float64Array, from: readonly Float64Array[]): void {
-  const places = grid.lags.length;
-  const longest = Math.max(0, ...from.map((sequence) => sequence.length));
-  from.forEach((sequence, s) => {
-    const end = Math.min(grid.dense, sequence.length);
-    for (let lag = 0; lag < end; lag++) into[s * places + lag] += sequence[lag];
-  });
-  for (const panel of grid.panels) {
-    const shares = new Float64Array(panel.count);
-    for (let lag = panel.from; lag < Math.min(panel.to, longest); lag++) {
-      sharesOf(panel, lag, shares);
-      from.forEach((sequence, s) => {
-        if (lag >= sequence.length || sequence[lag] === 0) return;
-        const value = sequence[lag];
-        const at = s * places + panel.place;
-        for (let q = 0; q < panel.count; q++) into[at + q] += value * shares[q];
-      });
-    }
-  }
-}
-
 /** Points and barycentric weights of panels with so many points. */
 const tables = new Map<number, { readonly points: Float64Array; readonly weights: Float64Array }>();
 
@@ -121,7 +91,7 @@ function tableOf(count: number): { readonly points: Float64Array; readonly weigh
  * shapes  out (points)
  * units   none
  * throws  nothing
- * source  as `spreadOver`
+ * source  barycentric interpolation: Berrut & Trefethen, SIAM Review 46 (2004), section 5
  * cost    O(points)
  */
 export function sharesOf({ from, to, count }: Panel, lag: number, out: Float64Array): void {

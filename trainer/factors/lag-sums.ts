@@ -131,7 +131,7 @@ export class LagSums {
    * shapes  into (nc × nc × places)
    * units   any
    * throws  nothing
-   * source  as `spreadOver`
+   * source  head of lag-grid.ts
    * cost    O(nc² (n log n + reach · points of a panel))
    */
   drain(into: Float64Array): void {
@@ -157,7 +157,7 @@ export class LagSums {
    * shapes  rows (at most nc × nc) of at least `length` lags, into (rows × places)
    * units   any
    * throws  nothing
-   * source  as `spreadOver`
+   * source  head of lag-grid.ts
    * cost    O(rows length points)
    */
   spread(pairs: readonly Float64Array[], length: number, into: Float64Array, how: Spread): void {

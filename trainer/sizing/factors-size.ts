@@ -1,5 +1,6 @@
 /** How large the factors of a site will be. */
 import type { Site } from '@stillwell/protocol';
+import { nearReach, THIN } from '../factors/far-lags.ts';
 import { isAffordable } from '../factors/keeper.ts';
 import { gridOf } from '../factors/moments.ts';
 import { sumLengths } from '../factors/run-sums.ts';
@@ -22,7 +23,9 @@ export function factorsBytes(site: Site, ticks: number): number | null {
   const places = gridOf(shape).lags.length;
   const sums = Object.values(sumLengths(channels, places, shape.longestHorizon));
   const end = 1 + channels * (2 + places);
-  const open = channels * (2 + Math.min(shape.reach, Math.max(0, ticks - 1)));
+  const near = nearReach(shape.reach);
+  const thinned = near < shape.reach ? Math.min(Math.floor(shape.reach / THIN), Math.floor(ticks / THIN)) : 0;
+  const open = channels * (2 + Math.min(near, Math.max(0, ticks - 1)) + thinned);
   const waiting = 1 + 3 * channels + shape.signalCount * WILD_STATE;
   const numbers = channels + sums.reduce((sum, length) => sum + length, 0) + end + open + waiting;
   return HEAD_BYTES + HEAD_BYTES_A_CHANNEL * channels + NUMBER_BYTES * numbers;
