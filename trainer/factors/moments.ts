@@ -7,7 +7,7 @@ import type { Round } from '@stillwell/runtime/filter';
 import { TrainError } from '../errors.ts';
 import { type Bank, featureCount } from '../identify/bank.ts';
 import type { Moments } from '../identify/moments.ts';
-import { flattenPoles } from '../identify/poles.ts';
+import { flattenPoles, type Poles } from '../identify/poles.ts';
 import type { Scaling } from '../identify/scaling.ts';
 import { scaleToAll } from './availability.ts';
 import type { Factors } from './factors.ts';
@@ -64,6 +64,7 @@ export function momentsFromFactors(factors: Factors, wish: MomentsWish): Moments
   const poles = flattenPoles(bank);
   const perChannel = bank.decays.length + 2 * bank.resonators.length;
   const growth = factors.halfLifeTicks === null ? 1 : 2 ** (1 / factors.halfLifeTicks);
+  checkHalfLife(factors, poles);
   const round = wish.round?.ticks ?? 0;
   const roundWeights = Float64Array.from({ length: nc }, (_, c) =>
     c < signalCount ? (wish.round?.weight[c] ?? 0) : 0,
@@ -104,6 +105,21 @@ function checkReach(factors: Factors, { bank, horizon, round, scalings }: Moment
   if (round === null) return;
   if (round.ticks > factors.longestRound) refuse('rounds', round.ticks, factors.longestRound);
   if (round.ticks < horizon) throw new RangeError(`A round of ${round.ticks} ticks is shorter than the horizon.`);
+}
+
+/** Where old ticks fade faster than a memory does, its sums would be differences of numbers that grow without end. */
+function checkHalfLife({ halfLifeTicks, site }: Factors, { poleRe, poleIm, count, level }: Poles): void {
+  if (halfLifeTicks === null) return;
+  for (let m = 0; m < count; m++) {
+    const memory = m === level ? 0 : -1 / Math.log(Math.hypot(poleRe[m], poleIm[m]));
+    if (memory <= halfLifeTicks) continue;
+    throw new TrainError(
+      'factors',
+      `the factors of ${site} have a half-life of ${halfLifeTicks} ticks, shorter than the ${Math.round(memory)} ticks that ` +
+        'the slowest feature remembers; gather them anew with a longer half-life, or none',
+      { details: { halfLifeTicks, memory } },
+    );
+  }
 }
 
 function emptyMoments(p: number, width: number, origins: number): Moments {

@@ -17,66 +17,99 @@ export interface PoleShape {
   readonly growth: number;
 }
 
+/** What a change of one, as many ticks ago as a place says, leaves in each feature some ticks before the last. */
+export interface Memory {
+  /** (perChannel × places), nothing where a place is newer than that or the memory has let go. */
+  readonly shares: Float64Array;
+  /** (perChannel) first place from which on there is nothing. */
+  readonly until: Int32Array;
+}
+
+/** Below this share of a change nothing of it is left. */
+const LEAST_SHARE = 1e-20;
+
 /**
- * (perChannel × places) what a change of one, as many ticks ago as a place says, leaves in each feature `shift` ticks before the
- * last; nothing where the place is newer than that.
+ * The features' memories, `shift` ticks before the last.
  *
- * shapes  as said
+ * shapes  as Memory
  * units   raw
  * throws  nothing
  * source  powers of a pole
  * cost    O(features places)
  */
-export function memories({ poles, perChannel }: PoleShape, grid: LagGrid, shift: number): Float64Array {
+export function memories({ poles, perChannel }: PoleShape, grid: LagGrid, shift: number): Memory {
   const places = grid.lags.length;
-  const out = new Float64Array(perChannel * places);
+  const shares = new Float64Array(perChannel * places);
+  const until = new Int32Array(perChannel);
   for (let m = 0; m < poles.count; m++) {
     if (m === poles.level) continue;
-    const radius = Math.hypot(poles.poleRe[m], poles.poleIm[m]);
+    const decay = Math.log(Math.hypot(poles.poleRe[m], poles.poleIm[m]));
     const angle = Math.atan2(poles.poleIm[m], poles.poleRe[m]);
-    const at = poles.feature[m] * places;
-    for (let q = 0; q < places; q++) {
+    const furthest = shift + Math.log(LEAST_SHARE) / decay;
+    const end = placesUpTo(grid, furthest);
+    const f = poles.feature[m];
+    until[f] = end;
+    if (poles.isComplex[m] === 1) until[f + 1] = end;
+    const at = f * places;
+    for (let q = Math.min(shift, grid.dense); q < end; q++) {
       const age = grid.lags[q] - shift;
-      if (age < 0) continue;
-      const size = radius ** age;
+      const size = Math.exp(decay * age);
+      if (poles.isComplex[m] === 0) {
+        shares[at + q] = size * poles.driveRe[m];
+        continue;
+      }
       const re = size * Math.cos(angle * age);
       const im = size * Math.sin(angle * age);
-      out[at + q] = re * poles.driveRe[m] - im * poles.driveIm[m];
-      if (poles.isComplex[m] === 1) out[at + places + q] = re * poles.driveIm[m] + im * poles.driveRe[m];
+      shares[at + q] = re * poles.driveRe[m] - im * poles.driveIm[m];
+      shares[at + places + q] = re * poles.driveIm[m] + im * poles.driveRe[m];
     }
   }
-  return out;
+  return { shares, until };
+}
+
+/** Places of the lags up to one: whole panels. */
+function placesUpTo(grid: LagGrid, lag: number): number {
+  if (lag < grid.dense) return Math.max(0, Math.ceil(lag));
+  const beyond = grid.panels.find(({ from }) => from > lag);
+  return beyond?.place ?? grid.lags.length;
 }
 
 /**
  * (rows × perChannel) each row of sums by place against each feature's memory.
  *
- * shapes  sums (rows × places), memory (perChannel × places)
+ * shapes  sums (rows × places)
  * units   raw
  * throws  nothing
  * source  definition
  * cost    O(rows features places)
  */
-export function remember(sums: Float64Array, memory: Float64Array, places: number): Float64Array {
+export function remember(sums: Float64Array, { shares, until }: Memory, places: number): Float64Array {
   const rows = sums.length / places;
-  const features = memory.length / places;
+  const features = until.length;
   const out = new Float64Array(rows * features);
   for (let r = 0; r < rows; r++) {
+    const row = sums.subarray(r * places, (r + 1) * places);
     for (let f = 0; f < features; f++) {
-      let even = 0;
-      let odd = 0;
-      const a = r * places;
-      const b = f * places;
-      let q = 0;
-      for (; q + 1 < places; q += 2) {
-        even += sums[a + q] * memory[b + q];
-        odd += sums[a + q + 1] * memory[b + q + 1];
-      }
-      if (q < places) even += sums[a + q] * memory[b + q];
-      out[r * features + f] = even + odd;
+      out[r * features + f] = dotOf(row, shares, f * places, until[f]);
     }
   }
   return out;
+}
+
+function dotOf(a: Float64Array, b: Float64Array, from: number, length: number): number {
+  let s0 = 0;
+  let s1 = 0;
+  let s2 = 0;
+  let s3 = 0;
+  let q = 0;
+  for (; q + 3 < length; q += 4) {
+    s0 += a[q] * b[from + q];
+    s1 += a[q + 1] * b[from + q + 1];
+    s2 += a[q + 2] * b[from + q + 2];
+    s3 += a[q + 3] * b[from + q + 3];
+  }
+  for (; q < length; q++) s0 += a[q] * b[from + q];
+  return s0 + s1 + (s2 + s3);
 }
 
 /**

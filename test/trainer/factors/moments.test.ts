@@ -77,6 +77,13 @@ describe('weights by age', () => {
   });
 });
 
+describe('a half-life shorter than a memory', () => {
+  it('is refused', () => {
+    const factors = gathered(values, ticks, { ...shape, halfLifeTicks: 50 }).end();
+    expect(() => momentsOf(factors, wholeBank)).toThrow(/half-life of 50 ticks, shorter than the \d+ ticks/);
+  });
+});
+
 /** Origins one by one, each weighted by its age at tick `newest`. */
 function weighted(values: readonly Float64Array[], bank: Bank, newest: number, halfLife: number): Moments {
   const z = standardised(values, [0, newest + 1], null);
