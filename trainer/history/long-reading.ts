@@ -15,6 +15,7 @@ import type { ReadingStream, StreamState } from './reading-stream.ts';
 import { type LongLimits, RecentReadings } from './recent.ts';
 import { type Belongs, type Place, savePlace } from './saved-place.ts';
 import { TextStream } from './text-stream.ts';
+import { checkStretch } from './ticks.ts';
 import { TimeReader } from './times.ts';
 
 /** Options of one reading. */
@@ -112,6 +113,9 @@ export class LongReading {
       own.end();
       this.#settings.progress?.end();
     }
+    const { firstTick, endTick } = this.recent;
+    const names = this.merge.finished.map(({ file }) => file).join(', ');
+    checkStretch(names, this.merge.rows, firstTick, endTick - firstTick, this.#site.tickMs);
     refuseUnseen(this.#site, (c) => this.recent.holds(c), this.merge.finished);
     this.older.handOn(this.recent, true);
   }

@@ -71,8 +71,10 @@ export function savePlace(path: string, belongs: Belongs, { data, lists }: Place
   const text = Buffer.from(JSON.stringify({ belongs, data, lengths: lists.map((list) => list.byteLength) }));
   const length = Buffer.alloc(4);
   length.writeUInt32LE(text.length);
-  const body = Buffer.concat([MAGIC, length, text, ...lists]);
-  writeOutput(path, Buffer.concat([body, createHash('sha256').update(body).digest()]));
+  const bytes = Buffer.concat([MAGIC, length, text, ...lists, Buffer.alloc(DIGEST_BYTES)]);
+  const end = bytes.length - DIGEST_BYTES;
+  createHash('sha256').update(bytes.subarray(0, end)).digest().copy(bytes, end);
+  writeOutput(path, bytes);
 }
 
 /**

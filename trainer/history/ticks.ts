@@ -54,6 +54,20 @@ export function digestOf(tickMs: number, firstTick: number, values: readonly Flo
 }
 
 /**
+ * Refuses a history that a stray time stretches.
+ *
+ * throws  TrainError 'history' where its ticks are empty but for one in a thousand
+ */
+export function checkStretch(names: string, readings: number, first: number, ticks: number, tickMs: number): void {
+  if (!(ticks > FEW_TICKS && ticks / readings > MOST_EMPTY)) return;
+  const at = (tick: number): string => new Date(tick * tickMs).toISOString();
+  throw new TrainError(
+    'history',
+    `${names}: expected readings most of the time, got ${readings} in ${ticks} ticks from ${at(first)} to ${at(first + ticks - 1)}; a stray time stretches the history: take that row out`,
+  );
+}
+
+/**
  * Lays a history on ticks.
  *
  * lattices      by channel; found in the history when absent
@@ -75,11 +89,7 @@ export function layOnTicks(
       'history',
       `${names}: expected readings over at least two ticks of ${tickMs / 1000} s, got ${span === null ? 'none' : 'one tick'} in the time asked for; give a longer history, a shorter tick, or other times to start and end at`,
     );
-  if (ticks > FEW_TICKS && ticks / span.readings > MOST_EMPTY)
-    throw new TrainError(
-      'history',
-      `${names}: expected readings most of the time, got ${span.readings} in ${ticks} ticks from ${new Date(span.first * tickMs).toISOString()} to ${new Date(span.last * tickMs).toISOString()}; a stray time stretches the history: take that row out`,
-    );
+  checkStretch(names, span.readings, span.first, ticks, tickMs);
   const orders = new Map<Float64Array, Uint32Array | null>();
   for (const { times } of history.channels) if (!orders.has(times)) orders.set(times, timeOrder(times));
   const channels = channelsOf(site);
