@@ -1,6 +1,6 @@
 /**
- * Histories of any number of signals for sizing: an invented plant read once a minute, whose signals swing with the day, wander
- * by themselves and follow the one before, printed to a hundredth.
+ * Histories of any number of signals for sizing: an invented plant read once a minute, whose signals swing with the day in a shape
+ * of their own, wander, ring and follow the one before after a dead time, printed to a hundredth.
  */
 import { once } from 'node:events';
 import { createWriteStream, rmSync, writeFileSync } from 'node:fs';
@@ -37,18 +37,12 @@ export async function writeSizePlant(folder: string, shape: SizeShape, seed = 11
   out.write(`time,${names.join(',')}\n`);
   const next = uniforms(seed);
   const normal = (): number => next() + next() + next() + next() - 2;
-  const wander = new Float64Array(signals);
+  const plant = Array.from({ length: signals }, (_, c) => new SignalOf(c, normal));
   for (let from = 0; from < ticks; from += BLOCK_ROWS) {
     const lines: string[] = [];
     for (let t = from; t < Math.min(ticks, from + BLOCK_ROWS); t++) {
-      const cells = [new Date(FIRST_MS + t * TICK_MS).toISOString()];
-      for (let c = 0; c < signals; c++) {
-        const before = c === 0 ? 0 : wander[c - 1]!;
-        wander[c] = 0.97 * wander[c]! + 0.02 * before + 0.3 * normal();
-        const swing = (2 + 0.1 * (c % 5)) * Math.sin((2 * Math.PI * (t + 40 * c)) / DAY);
-        cells.push((20 + 3 * (c % 7) + swing + wander[c]! + 0.2 * normal()).toFixed(2));
-      }
-      lines.push(cells.join(','));
+      const cells = plant.map((one, c) => one.next(t, c === 0 ? null : plant[c - 1]!).toFixed(2));
+      lines.push([new Date(FIRST_MS + t * TICK_MS).toISOString(), ...cells].join(','));
     }
     if (!out.write(`${lines.join('\n')}\n`)) await once(out, 'drain');
   }
@@ -65,4 +59,44 @@ async function asParquet(from: string, to: string): Promise<void> {
   connection.closeSync();
   instance.closeSync();
   rmSync(from);
+}
+
+/** Ticks after which a signal follows the one before it. */
+const DEAD_TICKS = 7;
+
+class SignalOf {
+  readonly #c: number;
+  readonly #normal: () => number;
+  /** The newest departures, the last DEAD_TICKS of them. */
+  readonly #ring = new Float64Array(DEAD_TICKS);
+  #wander = 0;
+  #swing: [number, number] = [0, 0];
+  #at = 0;
+
+  constructor(c: number, normal: () => number) {
+    this.#c = c;
+    this.#normal = normal;
+  }
+
+  /** Departure of DEAD_TICKS ago. */
+  get late(): number {
+    return this.#ring[this.#at]!;
+  }
+
+  next(t: number, before: SignalOf | null): number {
+    const c = this.#c;
+    const day = (2 * Math.PI * (t + 97 * c)) / DAY;
+    const shape = 2 * Math.sin(day) + (0.4 + 0.2 * (c % 3)) * Math.sin(2 * day + c) + 0.3 * Math.sin(3 * day - c);
+    this.#wander = 0.985 * this.#wander + 0.25 * this.#normal() + 0.04 * (before?.late ?? 0);
+    const [x, y] = this.#swing;
+    const turn = (2 * Math.PI) / (18 + 9 * (c % 6));
+    this.#swing = [
+      0.97 * (Math.cos(turn) * x - Math.sin(turn) * y) + 0.2 * this.#normal(),
+      0.97 * (Math.sin(turn) * x + Math.cos(turn) * y),
+    ];
+    const departure = this.#wander + this.#swing[0];
+    this.#ring[this.#at] = departure;
+    this.#at = (this.#at + 1) % DEAD_TICKS;
+    return 20 + 3 * (c % 7) + shape + departure + 0.1 * this.#normal();
+  }
 }

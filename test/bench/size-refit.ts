@@ -30,7 +30,7 @@ const SHAPES: readonly SizeShape[] = [
   { signals: 3, ticks: 300_000, horizon: 24, isParquet: true },
   { signals: 6, ticks: 800_000, horizon: 24, isParquet: true },
 ];
-const REPEATS = 2;
+const REPEATS = 1;
 
 const words = (name: string, prices: Work): string =>
   `export const ${name}: Work = {\n${Object.entries(prices)

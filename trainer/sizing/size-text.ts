@@ -55,7 +55,10 @@ export function fitText(site: string, extent: Extent, fit: FitPrediction, freeBy
       'time',
       `${durationText(seconds)} on this machine as it is now; longer where a kind beside the linear one is worth trying`,
     ],
-    ['bundle', `about ${sizeText(bundleBytes)}, never above ${sizeText(maxBundleBytes)}`],
+    [
+      'bundle',
+      `about ${sizeText(bundleBytes)} where signals share what they remember, up to ${sizeText(maxBundleBytes)} where each needs its own`,
+    ],
     ...(factorsBytes === null ? [] : [['factors', `${sizeText(factorsBytes)}, however long the history`]]),
     ['never formed', `covariance of the features, ${matrixText(covariance)}`],
     ['', `Gram matrix of the windows, ${matrixText(gram)}`],
