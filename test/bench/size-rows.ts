@@ -1,5 +1,6 @@
 /** Sizing held against what came: shapes that no constant was fitted on, by the real commands. */
 import { type BenchOptions, type Row, row } from './harness.ts';
+import { condensePeak } from './size-frames.ts';
 import type { SizeShape } from './size-plant.ts';
 import { runShape, type SizeRun } from './size-runs.ts';
 
@@ -31,6 +32,8 @@ export async function* sizeRows({ note }: BenchOptions): AsyncIterable<Row> {
     if (run.factorsBytes !== null && fit.factorsBytes !== null)
       yield off(`size: factors, ${name}`, fit.factorsBytes, run.factorsBytes);
   }
+  const { foreseen, came } = await condensePeak();
+  yield off('size: peak memory, condensing 6,000 frames of 2,000', foreseen, came);
 }
 
 function off(name: string, foreseen: number, came: number): Row {
