@@ -93,7 +93,6 @@ export interface VectorLoops {
   scale64(x: Pointer, factor: number, n: number): void;
   spectraAdd64(cr: Pointer, ci: Pointer, ar: Pointer, ai: Pointer, br: Pointer, bi: Pointer, n: number): void;
   cosines32(x: Pointer, factor: number, n: number): void;
-  waves32(x: Pointer, y: Pointer, factor: number, n: number): void;
   hadamard64(x: Pointer, n: number): void;
   hadamard32(x: Pointer, n: number): void;
 }

@@ -1,5 +1,5 @@
 /**
- * Cosine and sine by whole turns and one odd polynomial, in + and × alone, so that every machine gets the same bits; Math.cos is
+ * Cosine by whole turns and one odd polynomial, in + and × alone, so that every machine gets the same bits; Math.cos is
  * left approximate by the language. Not for angles beyond 2^50, which have no turn left to them.
  */
 
@@ -26,35 +26,10 @@ const [SINE_3, SINE_5, SINE_7, SINE_9] = [
  * cost    about 20 operations; error at most 1.3e-7 for |x| up to 2^20
  */
 export function cosine32(x: number): number {
-  return sineOf((0.25 - Math.abs(part(x))) * TWO_PI);
-}
-
-/**
- * Sine of a float32 as a float32, folded back where the angle is beyond a quarter of a turn.
- *
- * shapes  one number
- * units   radians
- * throws  nothing; NaN and infinities give NaN
- * source  as `cosine32`
- * cost    as `cosine32`, and the same error
- */
-export function sine32(x: number): number {
-  const rest = part(x);
-  const size = Math.abs(rest);
-  const folded = Math.min(size, 0.5 - size);
-  return sineOf((rest < 0 || Object.is(rest, -0) ? -folded : folded) * TWO_PI);
-}
-
-/** x in turns, less whole ones. */
-function part(x: number): number {
-  const t = x * TURNS;
-  return t - (t + ROUNDING - ROUNDING);
-}
-
-/** The sine of an angle in [-π/2, π/2], rounded to float32 at every step. */
-function sineOf(angle: number): number {
   const { fround } = Math;
-  const r = fround(angle);
+  const t = x * TURNS;
+  const part = t - (t + ROUNDING - ROUNDING);
+  const r = fround((0.25 - Math.abs(part)) * TWO_PI);
   const u = fround(r * r);
   let p = fround(SINE_9);
   p = fround(fround(p * u) + SINE_7);

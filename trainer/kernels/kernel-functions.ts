@@ -60,8 +60,6 @@ export interface Kernels {
   hadamard32(x: Float32Array, n: number): void;
   /** x = scale cos x in place; error of the cosine at most 1.3e-7 for |x| up to 2^20. */
   cosines32(x: Float32Array, n: number, scale: number): void;
-  /** y = scale sin x, x = scale cos x, with the same error. */
-  waves32(x: Float32Array, y: Float32Array, n: number, scale: number): void;
   dot(a: Float64Array, b: Float64Array, n: number): number;
   /** y += factor x. */
   axpy(y: Float64Array, factor: number, x: Float64Array, n: number): void;

@@ -148,10 +148,6 @@ export class MemoryKernels implements Kernels {
     this.#core.cosines32(this.#at(x, n), scale, n);
   }
 
-  waves32(x: Float32Array, y: Float32Array, n: number, scale: number): void {
-    this.#core.waves32(this.#at(x, n), this.#at(y, n), scale, n);
-  }
-
   dot(a: Float64Array, b: Float64Array, n: number): number {
     return this.#core.dot64(this.#at(a, n), this.#at(b, n), n);
   }

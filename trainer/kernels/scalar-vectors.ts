@@ -1,6 +1,6 @@
 /** The loops of assembly/vectors.ts and assembly/hadamard.ts in plain numbers; see core.ts. */
 import type { ThinLoops, VectorLoops } from './core.ts';
-import { cosine32, sine32 } from './cosines.ts';
+import { cosine32 } from './cosines.ts';
 
 /**
  * The loops over one memory.
@@ -48,14 +48,6 @@ export function scalarVectors(buffer: ArrayBuffer): VectorLoops & ThinLoops {
     cosines32(x, factor, n) {
       const f = Math.fround(factor);
       for (let k = x / 4; k < x / 4 + n; k++) heap32[k] = f * cosine32(heap32[k]);
-    },
-    waves32(x, y, factor, n) {
-      const f = Math.fround(factor);
-      for (let k = 0; k < n; k++) {
-        const phase = heap32[x / 4 + k];
-        heap32[x / 4 + k] = f * cosine32(phase);
-        heap32[y / 4 + k] = f * sine32(phase);
-      }
     },
     hadamard64: (x, n) => hadamard(heap, x / 8, n),
     hadamard32: (x, n) => hadamard(heap32, x / 4, n),

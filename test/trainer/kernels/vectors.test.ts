@@ -72,12 +72,7 @@ describe('cosines', () => {
         y.set(x);
         kernels.cosines32(y, y.length, 1);
         expect(gap(y, Float64Array.from(x, Math.cos))).toBeLessThan(ERROR);
-        const [cosines, sines] = [kernels.alloc32(10_007), kernels.alloc32(10_007)];
-        cosines.set(x);
-        kernels.waves32(cosines, sines, x.length, 1);
-        expect(bits(cosines) === bits(y)).toBe(true);
-        expect(gap(sines, Float64Array.from(x, Math.sin))).toBeLessThan(ERROR);
-        return bits(y) + bits(sines);
+        return bits(y);
       });
       expect(results[0] === results[1]).toBe(true);
     }

@@ -82,41 +82,12 @@ export function cosines32(x: usize, f: f32, n: i32): void {
     for (let at = x; at < last; at += 16) v128.store(at, sines(v128.load(at), f));
   }
   const left = n & 3;
-  if (left > 0) storeRest(end, sines(angles(loadRest(end, left)), f), left);
-}
-
-/** y = f sin(x), x = f cos(x). */
-export function waves32(x: usize, y: usize, f: f32, n: i32): void {
-  const end = x + (<usize>(n & ~3) << 2);
-  const apart = y - x;
-  for (; x < end; x += 1024) {
-    const last = end - x < 1024 ? end : x + 1024;
-    for (let at = x; at < last; at += 16) {
-      const v = v128.load(at);
-      v128.store(at + apart, quarterAngles(v));
-      v128.store(at, angles(v));
-    }
-    for (let at = x; at < last; at += 16) {
-      v128.store(at, sines(v128.load(at), f));
-      v128.store(at + apart, sines(v128.load(at + apart), f));
-    }
-  }
-  const left = n & 3;
   if (left == 0) return;
-  const v = loadRest(end, left);
-  storeRest(end, sines(angles(v), f), left);
-  storeRest(end + apart, sines(quarterAngles(v), f), left);
-}
-
-/** One to three values. */
-function loadRest(x: usize, left: i32): v128 {
+  x = end;
   let rest = v128.load32_zero(x);
   if (left > 1) rest = v128.load_lane<f32>(x + 4, rest, 1);
   if (left > 2) rest = v128.load_lane<f32>(x + 8, rest, 2);
-  return rest;
-}
-
-function storeRest(x: usize, rest: v128, left: i32): void {
+  rest = sines(angles(rest), f);
   v128.store_lane<f32>(x, rest, 0);
   if (left > 1) v128.store_lane<f32>(x + 4, rest, 1);
   if (left > 2) v128.store_lane<f32>(x + 8, rest, 2);
@@ -124,34 +95,16 @@ function storeRest(x: usize, rest: v128, left: i32): void {
 
 /** The angles in [-π/2, π/2] whose sines are the cosines of x: π/2 - |x less whole turns|. */
 function angles(x: v128): v128 {
-  const low = toSine(f64x2.promote_low_f32x4(x));
-  const high = toSine(f64x2.promote_low_f32x4(v128.shuffle<f64>(x, x, 1, 1)));
+  const low = part(f64x2.promote_low_f32x4(x));
+  const high = part(f64x2.promote_low_f32x4(v128.shuffle<f64>(x, x, 1, 1)));
   return v128.shuffle<f64>(f32x4.demote_f64x2_zero(low), f32x4.demote_f64x2_zero(high), 0, 2);
 }
 
-function toSine(x: v128): v128 {
-  return f64x2.mul(f64x2.sub(f64x2.splat(0.25), f64x2.abs(part(x))), f64x2.splat(TWO_PI));
-}
-
-/** The angles in [-π/2, π/2] of the same sine as x: folded back where beyond a quarter of a turn. */
-function quarterAngles(x: v128): v128 {
-  const low = toQuarter(f64x2.promote_low_f32x4(x));
-  const high = toQuarter(f64x2.promote_low_f32x4(v128.shuffle<f64>(x, x, 1, 1)));
-  return v128.shuffle<f64>(f32x4.demote_f64x2_zero(low), f32x4.demote_f64x2_zero(high), 0, 2);
-}
-
-function toQuarter(x: v128): v128 {
-  const rest = part(x);
-  const size = f64x2.abs(rest);
-  const folded = f64x2.min(size, f64x2.sub(f64x2.splat(0.5), size));
-  return f64x2.mul(v128.or(folded, v128.and(rest, f64x2.splat(-0.0))), f64x2.splat(TWO_PI));
-}
-
-/** x in turns, less whole ones. */
 function part(x: v128): v128 {
   const t = f64x2.mul(x, f64x2.splat(TURNS));
   const magic = f64x2.splat(ROUNDING);
-  return f64x2.sub(t, f64x2.sub(f64x2.add(t, magic), magic));
+  const rest = f64x2.sub(t, f64x2.sub(f64x2.add(t, magic), magic));
+  return f64x2.mul(f64x2.sub(f64x2.splat(0.25), f64x2.abs(rest)), f64x2.splat(TWO_PI));
 }
 
 /** f times the sines. */
