@@ -18,13 +18,11 @@ import { judge, type Verdicts, verdictSteps } from './judge/gate.ts';
 import { type Hindcast, hindcast } from './judge/hindcast.ts';
 import { type PlanWorth, planWorth } from './judge/plan-worth.ts';
 import { type Reliance, reliance } from './judge/reliance.ts';
-import { replayError } from './judge/replay-scores.ts';
-import { meanOf } from './judge/scores.ts';
 import { settle } from './judge/settle.ts';
 import { type KindSections, withCalibration } from './kinds/candidate.ts';
 import { chooseKind, type KindChoice, type Tried } from './kinds/choose-kind.ts';
 import { learnPlans, type Plans, plannedInputs } from './plans.ts';
-import { type Audit, checkAtRest } from './quantise/audit.ts';
+import { type Audit, auditErrors, checkAtRest } from './quantise/audit.ts';
 import { type Calibration, openCalibration, type Surroundings } from './quantise/float-model.ts';
 import { checkOptions, type Split, splitHistory } from './requirements.ts';
 import type { TickSpan } from './span.ts';
@@ -211,9 +209,7 @@ function auditRounding(small: Small, cast: Hindcast, series: Series, split: Spli
   const judged = indices(split.judged, series);
   const settled = { fromTick: Math.max(0, judged.fromTick - 4 * model.horizon), toTick: judged.fromTick };
   checkAtRest(model, series, settled);
-  const floatMse = replayError(small.float, series, judged);
-  const quantisedMse = meanOf(cast.mseStandardised);
-  return { floatMse, quantisedMse, ratio: floatMse > 0 ? quantisedMse / floatMse : 1 };
+  return auditErrors(model, small.float, series, judged, cast.mseStandardised);
 }
 
 /**

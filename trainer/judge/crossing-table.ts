@@ -78,7 +78,7 @@ export function learnCrossing(
     });
     return { crossingFresh, signals };
   });
-  const every = askEvery(span.toTick - span.fromTick - H, usual.length + declared.length);
+  const every = askEvery(span.toTick - span.fromTick - H, usual.length + declared.length, H);
   const ask = (moment: Moment): void => {
     if ((moment.at - span.fromTick) % every !== 0 || series.excluded?.isExcluded[moment.at] === 1) return;
     for (const { signals } of asked) {

@@ -16,18 +16,61 @@ import { TrainError } from '../errors.ts';
  */
 export function cholesky(a: Float64Array, n: number): Float64Array {
   const l = new Float64Array(n * n);
-  for (let i = 0; i < n; i++) {
-    for (let j = 0; j <= i; j++) {
-      const rest = a[i * n + j] - dot(l, i * n, j * n, j);
-      if (i !== j) {
-        l[i * n + j] = rest / l[j * n + j];
-        continue;
-      }
-      if (!(rest > 0 && rest < Number.POSITIVE_INFINITY)) throw notPositive(i, rest);
-      l[i * n + i] = Math.sqrt(rest);
+  const pair = new Float64Array(2);
+  for (let i = 0; i < n; i += 2) {
+    const hasNext = i + 1 < n;
+    for (let j = 0; j < i; j++) {
+      if (hasNext) twoDots(l, i * n, n, j * n, j, pair);
+      else pair[0] = dot(l, i * n, j * n, j);
+      l[i * n + j] = (a[i * n + j] - pair[0]) / l[j * n + j];
+      if (hasNext) l[(i + 1) * n + j] = (a[(i + 1) * n + j] - pair[1]) / l[j * n + j];
     }
+    setPivot(l, a, n, i);
+    if (!hasNext) continue;
+    l[(i + 1) * n + i] = (a[(i + 1) * n + i] - dot(l, (i + 1) * n, i * n, i)) / l[i * n + i];
+    setPivot(l, a, n, i + 1);
   }
   return l;
+}
+
+function setPivot(l: Float64Array, a: Float64Array, n: number, i: number): void {
+  const rest = a[i * n + i] - dot(l, i * n, i * n, i);
+  if (!(rest > 0 && rest < Number.POSITIVE_INFINITY)) throw notPositive(i, rest);
+  l[i * n + i] = Math.sqrt(rest);
+}
+
+/** Products of the rows at a and at a + n with the row at b, each in the order of `dot`. */
+function twoDots(l: Float64Array, a: number, n: number, b: number, count: number, out: Float64Array): void {
+  let s0 = 0;
+  let s1 = 0;
+  let s2 = 0;
+  let s3 = 0;
+  let r0 = 0;
+  let r1 = 0;
+  let r2 = 0;
+  let r3 = 0;
+  const next = a + n;
+  let k = 0;
+  for (; k + 3 < count; k += 4) {
+    const b0 = l[b + k];
+    const b1 = l[b + k + 1];
+    const b2 = l[b + k + 2];
+    const b3 = l[b + k + 3];
+    s0 += l[a + k] * b0;
+    s1 += l[a + k + 1] * b1;
+    s2 += l[a + k + 2] * b2;
+    s3 += l[a + k + 3] * b3;
+    r0 += l[next + k] * b0;
+    r1 += l[next + k + 1] * b1;
+    r2 += l[next + k + 2] * b2;
+    r3 += l[next + k + 3] * b3;
+  }
+  for (; k < count; k++) {
+    s0 += l[a + k] * l[b + k];
+    r0 += l[next + k] * l[b + k];
+  }
+  out[0] = s0 + s1 + (s2 + s3);
+  out[1] = r0 + r1 + (r2 + r3);
 }
 
 /**

@@ -6,14 +6,49 @@
 import { createBounds, createState, forecastPath, intervalOf, type Model, update } from '@stillwell/runtime/filter';
 import { TrainError } from '../errors.ts';
 import type { Series } from '../history/series.ts';
+import { scoreEvery } from '../judge/origin-budget.ts';
+import { standingAt } from '../judge/replay.ts';
+import { replayMse } from '../judge/replay-scores.ts';
+import { meanOf } from '../judge/scores.ts';
 import type { TickSpan } from '../span.ts';
 
-/** Standardised mean squared errors over signals and steps of the judged part. */
+/** Standardised mean squared errors over signals and steps of the judged part, or of its end where that is long. */
 export interface Audit {
   readonly floatMse: number;
   readonly quantisedMse: number;
   /** quantisedMse / floatMse. */
   readonly ratio: number;
+}
+
+/** Of more origins than are scored, so many of the last ones: the two models' errors go together, and their ratio needs few. */
+const MOST_AUDITED = 2000;
+
+/**
+ * Squared errors of both over the judged part; `rounded` has been replayed over it, with mean squared errors `known`.
+ *
+ * shapes  span of indices into the series; known (ny × H)
+ * units   standardised²
+ * throws  FilterError if a model does not fit the series
+ * source  none
+ * cost    one replay; where there are very many origins, two short ones
+ */
+export function auditErrors(
+  rounded: Model,
+  float: Model,
+  series: Series,
+  { fromTick, toTick }: TickSpan,
+  known: Float64Array,
+): Audit {
+  const isLong = scoreEvery(toTick - fromTick) > 1;
+  const span = { fromTick: isLong ? toTick - MOST_AUDITED - rounded.horizon : fromTick, toTick };
+  const errorOf = (model: Model): number => {
+    const before = { ...span, fromTick: span.fromTick - 1 };
+    const standing = isLong ? standingAt(model, series, before, before.fromTick, true) : undefined;
+    return meanOf(replayMse(model, series, span, { standing }));
+  };
+  const floatMse = errorOf(float);
+  const quantisedMse = isLong ? errorOf(rounded) : meanOf(known);
+  return { floatMse, quantisedMse, ratio: floatMse > 0 ? quantisedMse / floatMse : 1 };
 }
 
 /**

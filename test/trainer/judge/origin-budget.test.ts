@@ -1,8 +1,10 @@
 /** Thinning of origins: none below the budget, and above it scores that say the same. */
 import { describe, expect, test } from 'vitest';
+import { askEvery } from '../../../trainer/judge/crossings.ts';
 import { hindcast } from '../../../trainer/judge/hindcast.ts';
 import { scoreEvery } from '../../../trainer/judge/origin-budget.ts';
-import { replayMse } from '../../../trainer/judge/replay-scores.ts';
+import { replayError, replayMse } from '../../../trainer/judge/replay-scores.ts';
+import { auditErrors } from '../../../trainer/quantise/audit.ts';
 import { seriesOf } from '../../support/history.ts';
 import { syntheticModel, syntheticReadings } from '../../support/models.ts';
 
@@ -12,6 +14,14 @@ test.each([
   [6001, 2],
   [12_741, 3],
 ])('of %d origins every %d. is scored', (origins, every) => expect(scoreEvery(origins)).toBe(every));
+
+test.each([
+  [6000, 8, 60, 7],
+  [6001, 8, 60, 30],
+  [12_741, 32, 6, 15],
+])('of %d origins, %d limits and %d steps every %d. is asked about limits', (origins, limits, horizon, every) => {
+  expect(askEvery(origins, limits, horizon)).toBe(every);
+});
 
 describe('a hindcast of more origins than are scored', () => {
   const model = syntheticModel({ horizon: 6 });
@@ -42,5 +52,16 @@ describe('a hindcast of more origins than are scored', () => {
   test('keeps the residual of every tick', () => {
     expect(thinned.residuals[0]).toHaveLength(6400);
     expect(thinned.residuals[0]!.every((residual) => !Number.isNaN(residual))).toBe(true);
+  });
+
+  test('is audited on its end alone, both models on the same origins', () => {
+    const known = replayMse(model, series, { fromTick: 500, toTick: 6505 });
+    const coarse = { ...model, bottleneck: model.bottleneck.map((weight) => 1.05 * weight) };
+    const short = auditErrors(model, coarse, series, { fromTick: 500, toTick: 6500 }, known);
+    expect(short.quantisedMse).toBeCloseTo(known.reduce((sum, mse) => sum + mse, 0) / known.length, 12);
+    expect(short.floatMse).toBe(replayError(coarse, series, { fromTick: 500, toTick: 6500 }));
+    const long = auditErrors(model, coarse, series, { fromTick: 500, toTick: 6900 }, known);
+    expect(long.quantisedMse).toBeCloseTo(replayError(model, series, { fromTick: 4894, toTick: 6900 }), 6);
+    expect(Math.abs(long.ratio / short.ratio - 1)).toBeLessThan(0.01);
   });
 });
