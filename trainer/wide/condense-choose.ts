@@ -2,10 +2,13 @@
  * Which states a condenser keeps: how many are worth their place, and whether their forecasts are read out of the factors, with
  * the ridge of what was let go, or by exact regression in one more pass; both by the windows after those learned from. The
  * first shrinks what a short recording would overrate. The second is right on a long one: directions of the truncated factors
- * that are nearly all future hold a little past each, which within the factors seems to tell that future.
+ * that are nearly all future hold a little past each, which within the factors seems to tell that future. Beside them stands the
+ * regression on the states and each number's own newest value, which keeps what few states cannot carry, such as where in the
+ * picture something is.
  */
 import type { CondenserShape } from './condenser.ts';
 import type { SvdFactors } from './incremental-svd.ts';
+import { OwnReadout } from './own-readout.ts';
 import type { PastFeatures } from './past-features.ts';
 import { type JointLayout, type PredictiveState, predictiveState } from './predictive-state.ts';
 import type { ProjectedFrames } from './projected-frames.ts';
@@ -29,22 +32,75 @@ export interface Choice {
   readonly choose: number;
 }
 
+/** States, and what each number's own newest value adds to their forecasts. */
+export interface ChosenStates extends PredictiveState {
+  /** (horizon · numbers). */
+  readonly own: Float64Array;
+}
+
 /** The states; `order` null: as many as pay, up to `mostStates`. */
 export function chooseStates(
   choice: Choice,
   { order, mostStates }: { readonly order: number | null; readonly mostStates: number },
-): PredictiveState {
+): ChosenStates {
   const within = predictiveState(choice.factors, choice.layout, order ?? mostStates);
   const exact = readOut(choice, within);
   const [gains, exactGains] = [gainsOf(choice, within), gainsOf(choice, exact)];
   const isExact = Math.max(...exactGains) >= Math.max(...gains);
   const told = isExact ? exactGains : gains;
-  const kept = Math.min(order ?? worthwhile(told), within.order);
+  const learned = ownReadout(choice, within, 0, choice.learn, 1);
+  const ownGains = ownGainsOf(choice, within, learned);
+  const isOwn = Math.max(...ownGains) > Math.max(...told);
+  const kept = Math.min(order ?? worthwhile(isOwn ? ownGains : told), within.order);
   const found = isExact
     ? readOut(choice, firstStates(within, kept))
     : predictiveState(choice.factors, choice.layout, kept);
   // What each state is worth as those windows have it: within the factors it would be flattered.
-  return { ...found, explained: told.slice(0, kept).map((gain, k) => gain - (k === 0 ? 0 : told[k - 1])) };
+  const explained = told.slice(0, kept).map((gain, k) => gain - (k === 0 ? 0 : told[k - 1]));
+  const { horizon, numbers } = choice.shape;
+  if (!isOwn) return { ...found, explained, own: new Float64Array(horizon * numbers) };
+  return { ...found, explained, ...learned.solve(kept) };
+}
+
+/** Regression on states and newest values over windows within [from, to). */
+function ownReadout(
+  { frames, past, shape }: Choice,
+  state: PredictiveState,
+  from: number,
+  to: number,
+  stride: number,
+): OwnReadout {
+  const { window, horizon, numbers } = shape;
+  const readout = new OwnReadout(state.order, numbers, horizon);
+  const phi = new Float64Array(past.length);
+  const x = new Float64Array(state.order);
+  frames.visit(
+    window + horizon,
+    from,
+    to,
+    (row) => {
+      past.write(row, 0, phi);
+      mapStates(state, phi, x);
+      readout.add(x, row.subarray((window - 1) * numbers, window * numbers), row.subarray(window * numbers));
+    },
+    stride,
+  );
+  return readout;
+}
+
+/** As `gainsOf`, of states and newest values together. */
+function ownGainsOf(choice: Choice, state: PredictiveState, learned: OwnReadout): Float64Array {
+  const { learn, choose } = choice;
+  const judge = ownReadout(choice, state, learn, choose, strideOf(choice));
+  const energy = judge.energy;
+  return Float64Array.from({ length: state.order }, (_, k) => {
+    const error = judge.errorOf(learned.solve(k + 1), k + 1);
+    return energy > 0 ? 1 - error / energy : 0;
+  });
+}
+
+function strideOf({ learn, choose }: Choice): number {
+  return Math.max(1, Math.floor((choose - learn) / SAMPLE));
 }
 
 /** The first states alone: they are the same whatever their number. */
@@ -87,7 +143,8 @@ function readOut({ frames, past, shape, learn }: Choice, state: PredictiveState)
 }
 
 /** Squared error saved by the first 1, 2, … states, as a share of all energy that came. */
-function gainsOf({ frames, past, shape, learn, choose }: Choice, most: PredictiveState): Float64Array {
+function gainsOf(choice: Choice, most: PredictiveState): Float64Array {
+  const { frames, past, shape, learn, choose } = choice;
   const { window, horizon, numbers } = shape;
   const d = most.order;
   const gains = new Float64Array(d);
@@ -112,7 +169,7 @@ function gainsOf({ frames, past, shape, learn, choose }: Choice, most: Predictiv
         }
       }
     },
-    Math.max(1, Math.floor((choose - learn) / SAMPLE)),
+    strideOf(choice),
   );
   for (let k = 1; k < d; k++) gains[k] += gains[k - 1];
   return gains.map((gain) => (energy > 0 ? gain / energy : 0));

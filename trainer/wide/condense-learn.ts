@@ -95,6 +95,7 @@ export function learnCondenser(frames: ProjectedFrames, options: LearnOptions): 
     featureMean: lift.mean,
     stateMap: found.stateMap,
     forecastMap: found.forecastMap,
+    own: found.own,
     transition: found.transition,
     singularValues: factors.singularValues,
     explained: found.explained,

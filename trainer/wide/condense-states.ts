@@ -145,7 +145,7 @@ export function scoreCondenser(
 }
 
 function addFrameErrors(
-  { shape, record, forecastMap }: Condenser,
+  { shape, record, forecastMap, own }: Condenser,
   row: Float64Array,
   x: Float64Array,
   h: number,
@@ -158,7 +158,7 @@ function addFrameErrors(
   const newest = (window - 1) * numbers;
   const came = (window + h) * numbers;
   for (let j = 0; j < numbers; j++) {
-    let told = 0;
+    let told = own[h * numbers + j] * row[newest + j];
     const at = (h * numbers + j) * d;
     for (let k = 0; k < d; k++) told += forecastMap[at + k] * x[k];
     ours[h] += (row[came + j] - told) ** 2;

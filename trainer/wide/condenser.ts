@@ -65,6 +65,8 @@ export interface Condenser {
   readonly stateMap: Float64Array;
   /** (horizon · numbers × order). */
   readonly forecastMap: Float64Array;
+  /** (horizon · numbers) what each number's own newest value adds to its forecasts. */
+  readonly own: Float64Array;
   /** (order × order). */
   readonly transition: Float64Array;
   /** (rank) falling. */
@@ -80,6 +82,7 @@ const ARRAYS = [
   'featureMean',
   'stateMap',
   'forecastMap',
+  'own',
   'transition',
   'singularValues',
   'explained',
@@ -138,8 +141,8 @@ export function decodeCondenser(bytes: Buffer, path: string): Condenser {
     at += 8 * length;
     return values;
   });
-  const [mean, featureMean, stateMap, forecastMap, transition, singularValues, explained] = arrays;
-  return { shape, record, mean, featureMean, stateMap, forecastMap, transition, singularValues, explained };
+  const [mean, featureMean, stateMap, forecastMap, own, transition, singularValues, explained] = arrays;
+  return { shape, record, mean, featureMean, stateMap, forecastMap, own, transition, singularValues, explained };
 }
 
 /** From its place; throws as `decodeCondenser`, and 'file' where it cannot be read. */

@@ -29,6 +29,7 @@ export class OwnReadout {
   readonly #xf: Float64Array;
   readonly #yy: Float64Array;
   readonly #yf: Float64Array;
+  readonly #ff: Float64Array;
 
   constructor(states: number, outputs: number, steps: number) {
     this.#states = states;
@@ -39,6 +40,7 @@ export class OwnReadout {
     this.#xf = new Float64Array(states * outputs * steps);
     this.#yy = new Float64Array(outputs);
     this.#yf = new Float64Array(outputs * steps);
+    this.#ff = new Float64Array(outputs * steps);
   }
 
   /** Takes a state (states), the newest values (outputs) and what came after them (steps × outputs). */
@@ -52,29 +54,31 @@ export class OwnReadout {
       for (let j = 0, at = i * m; j < m; j++, at++) this.#xf[at] += xi * future[j];
     }
     for (let j = 0; j < n; j++) this.#yy[j] += newest[j] * newest[j];
-    for (let c = 0, j = 0; c < m; c++, j = j + 1 === n ? 0 : j + 1) this.#yf[c] += newest[j] * future[c];
+    for (let c = 0, j = 0; c < m; c++, j = j + 1 === n ? 0 : j + 1) {
+      this.#yf[c] += newest[j] * future[c];
+      this.#ff[c] += future[c] * future[c];
+    }
   }
 
   /**
-   * The forecasts of least squared error.
+   * The forecasts of least squared error from the first states.
    *
-   * shapes  as OwnForecast
+   * shapes  as OwnForecast, of `order` states, 0 for the newest values alone
    * units   those of what was added
    * throws  TrainError 'fit' where numbers are not finite
    * source  Frisch and Waugh, Econometrica 1 (1933): the newest value's part from what the states leave of it
-   * cost    O(states² (states + steps · outputs))
+   * cost    O(order² (order + steps · outputs))
    */
-  solve(): OwnForecast {
-    const [d, n] = [this.#states, this.#outputs];
+  solve(order = this.#states): OwnForecast {
+    const n = this.#outputs;
     const m = n * this.#steps;
-    const energy = this.#xx.slice();
-    let trace = 0;
-    for (let k = 0; k < d; k++) trace += energy[k * d + k];
-    for (let k = 0; k < d; k++) energy[k * d + k] += (LEAST_RIDGE * trace) / d + Number.MIN_VALUE;
-    const factor = cholesky(energy, d);
-    const [byState, ofNewest] = [this.#xf.slice(), this.#xy.slice()];
-    solveCholesky(factor, d, byState, m);
-    solveCholesky(factor, d, ofNewest, n);
+    const d = order;
+    const factor = this.#factor(d);
+    const [byState, ofNewest] = [this.#xf.slice(0, d * m), this.#xy.slice(0, d * n)];
+    if (d > 0) {
+      solveCholesky(factor, d, byState, m);
+      solveCholesky(factor, d, ofNewest, n);
+    }
     const own = new Float64Array(m);
     const forecastMap = new Float64Array(m * d);
     for (let c = 0; c < m; c++) {
@@ -89,5 +93,50 @@ export class OwnReadout {
       for (let k = 0; k < d; k++) forecastMap[c * d + k] = byState[k * m + c] - own[c] * ofNewest[k * n + j];
     }
     return { forecastMap, own };
+  }
+
+  /**
+   * Sum of squared errors that forecasts from the first states would have made on the rows added here; `energy` without any.
+   *
+   * shapes  as `solve` gives them for `order` states
+   * units   squares of those of what was added
+   * throws  nothing
+   * source  definition, expanded
+   * cost    O(order² steps · outputs)
+   */
+  errorOf({ forecastMap, own }: OwnForecast, order: number): number {
+    const [all, n] = [this.#states, this.#outputs];
+    const m = n * this.#steps;
+    let sum = 0;
+    for (let c = 0; c < m; c++) {
+      const j = c % n;
+      const a = own[c];
+      sum += this.#ff[c] - 2 * a * this.#yf[c] + a * a * this.#yy[j];
+      for (let i = 0; i < order; i++) {
+        const f = forecastMap[c * order + i];
+        let known = 0;
+        for (let k = 0; k < order; k++) known += this.#xx[i * all + k] * forecastMap[c * order + k];
+        sum += f * (known + 2 * a * this.#xy[i * n + j] - 2 * this.#xf[i * m + c]);
+      }
+    }
+    return sum;
+  }
+
+  /** Sum of squares of what came. */
+  get energy(): number {
+    return this.#ff.reduce((sum, value) => sum + value, 0);
+  }
+
+  /** Factor of the first states' energy. */
+  #factor(d: number): Float64Array {
+    const all = this.#states;
+    const energy = new Float64Array(d * d);
+    let trace = 0;
+    for (let i = 0; i < d; i++) {
+      for (let k = 0; k < d; k++) energy[i * d + k] = this.#xx[i * all + k];
+      trace += energy[i * d + i];
+    }
+    for (let k = 0; k < d; k++) energy[k * d + k] += (LEAST_RIDGE * trace) / d + Number.MIN_VALUE;
+    return d > 0 ? cholesky(energy, d) : energy;
   }
 }

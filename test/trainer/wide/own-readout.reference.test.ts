@@ -30,6 +30,31 @@ test('is the least-squares regression on states and newest value, number by numb
   }
 });
 
+test('fewer states are those regressed alone, and errors are those of the rows', () => {
+  const all = rows(5);
+  const readout = new OwnReadout(STATES, OUTPUTS, STEPS);
+  const fewer = new OwnReadout(2, OUTPUTS, STEPS);
+  for (const { x, newest, future } of all) {
+    readout.add(x, newest, future);
+    fewer.add(x.slice(0, 2), newest, future);
+  }
+  for (const order of [0, 2]) {
+    const { forecastMap, own } = readout.solve(order);
+    if (order === 2) expect(forecastMap).toEqual(fewer.solve().forecastMap);
+    let sum = 0;
+    for (const { x, newest, future } of all) {
+      future.forEach((value, c) => {
+        let told = own[c] * newest[c % OUTPUTS];
+        for (let k = 0; k < order; k++) told += forecastMap[c * order + k] * x[k];
+        sum += (value - told) ** 2;
+      });
+    }
+    expect(readout.errorOf({ forecastMap, own }, order) / sum).toBeCloseTo(1, 9);
+  }
+  const energy = all.reduce((sum, { future }) => sum + future.reduce((part, value) => part + value * value, 0), 0);
+  expect(readout.energy / energy).toBeCloseTo(1, 12);
+});
+
 test('a newest value that the states tell already, or that never moves, adds nothing', () => {
   const readout = new OwnReadout(1, 2, 1);
   for (let t = 1; t < 20; t++) readout.add([t], [2 * t, 0], [3 * t, t]);
