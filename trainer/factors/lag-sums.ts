@@ -57,7 +57,8 @@ export class LagSums {
   readonly #spectra: Spectra[] = [];
   readonly #how: Spread;
 
-  constructor(channels: number, grid: LagGrid, reach: number, how: Spread) {
+  /** `rows` numbers more may be asked for by `alloc`. */
+  constructor(channels: number, grid: LagGrid, reach: number, how: Spread, rows = 0) {
     this.#how = how;
     this.#channels = channels;
     this.#grid = grid;
@@ -68,7 +69,17 @@ export class LagSums {
     const spectra = 1.5 * pairs * (size + 16);
     const transforms = 2 * channels * (size + 16) + 12 * size;
     const spreading = ROWS * (pairs + points) + pairs * points;
-    this.#kernels = createKernels(8 * Math.ceil(spectra + transforms + spreading) + 65_536);
+    this.#kernels = createKernels(8 * Math.ceil(spectra + transforms + spreading + rows) + 65_536);
+  }
+
+  /** Zeros in the kernels' memory, for good. */
+  alloc(n: number): Float64Array {
+    return this.#kernels.alloc64(n);
+  }
+
+  /** Σ a b of two arrays from `alloc`, or parts of them. */
+  dot(a: Float64Array, b: Float64Array): number {
+    return this.#kernels.dot(a, b, a.length);
   }
 
   /**

@@ -56,13 +56,13 @@ export class RunBook {
     this.#shape = shape;
     this.#near = nearReach(reach);
     this.#blockTicks = longestTransform(this.#near) - this.#near;
-    this.#lags = new LagSums(channels, grid, this.#near, nearSpread(reach));
+    const room = this.#near + this.#blockTicks;
+    this.#lags = new LagSums(channels, grid, this.#near, nearSpread(reach), 2 * channels * (room + 8));
     this.#far = this.#near < reach ? new FarLags(channels, grid, reach, halfLifeTicks) : null;
     this.#sums = emptySums(channels, grid.lags.length, shape.longestHorizon, from?.sums ?? null);
     this.#ends = [...(from?.ends ?? [])];
-    const room = this.#near + this.#blockTicks;
-    this.#changes = Array.from({ length: channels }, () => new Float64Array(room));
-    this.#levels = Array.from({ length: channels }, () => new Float64Array(room));
+    this.#changes = Array.from({ length: channels }, () => this.#lags.alloc(room));
+    this.#levels = Array.from({ length: channels }, () => this.#lags.alloc(room));
     this.#level = new Float64Array(channels);
     this.#first = new Float64Array(channels);
     if (from?.open) this.#goOn(from.open);
@@ -158,12 +158,11 @@ export class RunBook {
       changes: this.#changes.map((row) => row.subarray(start, this.#filled)),
       levels: this.#levels.map((row) => row.subarray(start, this.#filled)),
       weights,
-      // A run's first tick has a level but no change; it counts as a head only.
       firstTick: this.#ticks - count,
       first: this.#first,
       isThere: this.#isThere!,
     };
-    addLevels(this.#sums, block, channels);
+    addLevels(this.#sums, block, channels, (a, b) => this.#lags.dot(a, b));
     if (block.firstTick === 0) addHeads(this.#sums, block, channels, longestHorizon);
     const before = Math.min(start, this.#near);
     const earlier = this.#changes.map((row) => row.subarray(start - before, this.#filled));

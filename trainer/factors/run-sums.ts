@@ -131,28 +131,38 @@ export interface BlockOfRun {
  * source  definitions
  * cost    O(nc² ticks)
  */
-export function addLevels(sums: MutableSums, block: BlockOfRun, channels: number): void {
-  const { changes, levels, weights, firstTick, isThere } = block;
+export function addLevels(
+  sums: MutableSums,
+  { changes, levels, weights, firstTick, isThere }: BlockOfRun,
+  channels: number,
+  vectorDot: (a: Float64Array, b: Float64Array) => number,
+): void {
+  // A run's first tick has a level but no change; it counts as a head only.
   const from = firstTick === 0 ? 1 : 0;
-  const end = changes[0].length;
-  const weight = (row: Float64Array): Float64Array => (weights === null ? row : row.map((v, k) => v * weights[k]));
-  let total = 0;
-  for (let k = from; k < end; k++) total += weights === null ? 1 : weights[k];
+  const part = (row: Float64Array): Float64Array => row.subarray(from);
+  const weight = (row: Float64Array): Float64Array =>
+    weights === null ? part(row) : part(row.map((value, k) => value * weights[k]));
+  const product = weights === null ? vectorDot : dot;
+  const total = weights === null ? changes[0].length - from : sumOf(part(weights));
   sums.count += total;
   for (let i = 0; i < channels; i++) {
     if (isThere[i] === 0) continue;
     const change = weight(changes[i]);
     const level = weight(levels[i]);
-    const changed = sumOf(change, from);
-    const stood = sumOf(level, from);
+    const changed = sumOf(change);
+    const stood = sumOf(level);
     for (let j = 0; j < channels; j++) {
       if (isThere[j] === 0) continue;
       const pair = i * channels + j;
-      sums.levelChanges[pair] += dot(change, levels[j], from);
-      sums.levels[pair] += dot(level, levels[j], from);
+      const other = part(levels[j]);
+      sums.levelChanges[pair] += product(change, other);
       sums.levelSums[pair] += stood;
       sums.changeSums[pair] += changed;
       sums.counts[pair] += total;
+      if (j > i) continue;
+      const both = product(level, other);
+      sums.levels[pair] += both;
+      if (j < i) sums.levels[j * channels + i] += both;
     }
   }
 }
@@ -194,10 +204,10 @@ export function addHeads(sums: MutableSums, block: BlockOfRun, channels: number,
   }
 }
 
-function dot(a: Float64Array, b: Float64Array, from: number): number {
+function dot(a: Float64Array, b: Float64Array): number {
   let even = 0;
   let odd = 0;
-  let k = from;
+  let k = 0;
   for (; k + 1 < a.length; k += 2) {
     even += a[k] * b[k];
     odd += a[k + 1] * b[k + 1];
@@ -205,8 +215,8 @@ function dot(a: Float64Array, b: Float64Array, from: number): number {
   return k < a.length ? even + odd + a[k] * b[k] : even + odd;
 }
 
-function sumOf(a: Float64Array, from: number): number {
+function sumOf(a: Float64Array): number {
   let sum = 0;
-  for (let k = from; k < a.length; k++) sum += a[k];
+  for (let k = 0; k < a.length; k++) sum += a[k];
   return sum;
 }
