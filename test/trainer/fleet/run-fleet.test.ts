@@ -62,7 +62,7 @@ describe('the same bytes', () => {
       const { results } = await run(worksOf(fleet, out), threads);
       seen.push([digests(out), fleetJson(results.filter((one) => one !== null))]);
     }
-    expect(Object.keys((seen[0] as [object])[0])).toHaveLength(15);
+    expect(Object.keys((seen[0] as [object])[0])).toHaveLength(18);
     expect(seen[1]).toEqual(seen[0]);
     expect(seen[2]).toEqual(seen[0]);
     const job = worksOf(fleet, '/out')[1]!.task!.job;
@@ -114,6 +114,17 @@ describe('going on', () => {
     const { results: rest } = await run(worksOf(fleet, out), 2);
     expect(rest.map((one) => one?.facts != null && one.isUnchanged)).toEqual([false, false, true]);
   });
+});
+
+it('a place that cannot be written fails its own site alone', async () => {
+  const fleet = testFolder();
+  const out = testFolder();
+  writeFleet(fleet, ['north', 'south']);
+  writeFileSync(join(out, 'north'), 'in the way');
+  const { results } = await run(worksOf(fleet, out, 1, ['north', 'south']), 1);
+  expect(results[0]!.problem).toMatch(/cannot write .*north.*a file stands where a folder is wanted/);
+  expect(results[1]!.problem).toBeNull();
+  expect(readFileSync(join(out, 'north'), 'utf8')).toBe('in the way');
 });
 
 describe('a worker that dies', () => {
