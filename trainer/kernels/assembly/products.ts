@@ -130,7 +130,8 @@ export function panels(
     for (let i = 0; i < rows; i += 2, strip += left) {
       if (i + skew + 1 < j) continue;
       const to = c + (<usize>(i * rowStride + j * columnStride) << 3);
-      tile(to, rowStride, columnStride, strip, next, b, rows - i, columns - j, steps, isTaken);
+      if (columns - j < 5) narrowTile(to, rowStride, columnStride, strip, next, b, rows - i, columns - j, steps, isTaken);
+      else tile(to, rowStride, columnStride, strip, next, b, rows - i, columns - j, steps, isTaken);
     }
   }
 }
@@ -184,6 +185,43 @@ function tile(
   }
   addRow(to, columnStride, c00, c01, c02, c03, columns);
   if (rows > 1) addRow(to + ((<usize>rowStride) << 3), columnStride, c10, c11, c12, c13, columns);
+}
+
+/** The left half of a tile, for a strip with no more than four columns. */
+function narrowTile(
+  to: usize,
+  rowStride: i32,
+  columnStride: i32,
+  a: usize,
+  next: usize,
+  b: usize,
+  rows: i32,
+  columns: i32,
+  steps: i32,
+  isTaken: i32,
+): void {
+  let c00 = f64x2.splat(0);
+  let c01 = f64x2.splat(0);
+  let c10 = f64x2.splat(0);
+  let c11 = f64x2.splat(0);
+  for (let t = 0; t < steps; t++, a += next, b += 64) {
+    const b0 = v128.load(b);
+    const b1 = v128.load(b, 16);
+    const a0 = v128.load_splat<f64>(a);
+    c00 = f64x2.add(c00, f64x2.mul(a0, b0));
+    c01 = f64x2.add(c01, f64x2.mul(a0, b1));
+    const a1 = v128.load_splat<f64>(a, 8);
+    c10 = f64x2.add(c10, f64x2.mul(a1, b0));
+    c11 = f64x2.add(c11, f64x2.mul(a1, b1));
+  }
+  if (isTaken) {
+    c00 = f64x2.neg(c00);
+    c01 = f64x2.neg(c01);
+    c10 = f64x2.neg(c10);
+    c11 = f64x2.neg(c11);
+  }
+  addRow(to, columnStride, c00, c01, c01, c01, columns);
+  if (rows > 1) addRow(to + ((<usize>rowStride) << 3), columnStride, c10, c11, c11, c11, columns);
 }
 
 /** Adds up to eight sums to a row of the result. */
