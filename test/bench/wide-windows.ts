@@ -3,7 +3,7 @@
  * rotor as random features, their running decomposition together with what comes after, and the forecast from the few states
  * that come of it. Prints one JSON object. With a second word: another count of features, 0 for the windows themselves.
  */
-import { createFeatures, IncrementalSvd, medianWidth, predictiveState, ReadoutRegression } from '@stillwell/trainer';
+import { createFeatures, IncrementalSvd, medianWidth, OwnReadout, predictiveState } from '@stillwell/trainer';
 import { rotor, SENSORS } from './rotor.ts';
 
 const LEARNED = 90_000;
@@ -95,11 +95,12 @@ function main(): void {
   );
 }
 
-/** The state of a window, and how readings move on from its newest. */
+/** The state of a window, its newest readings, and those that come after. */
 class States {
   readonly x: Float64Array;
-  /** (OUTPUTS) readings at the steps less the newest. */
-  readonly moved = new Float64Array(OUTPUTS);
+  readonly newest = new Float64Array(SENSORS);
+  /** (OUTPUTS). */
+  readonly future = new Float64Array(OUTPUTS);
   readonly #phi: Float32Array;
   readonly #readings: Float32Array;
   readonly #past: Past;
@@ -123,43 +124,39 @@ class States {
       this.x[d] = sum;
     }
     const newest = (t + WINDOW - 1) * SENSORS;
-    for (let k = 0; k < OUTPUTS; k++) {
-      const i = k % SENSORS;
-      const step = STEPS[Math.floor(k / SENSORS)]!;
-      this.moved[k] = this.#readings[newest + step * SENSORS + i]! - this.#readings[newest + i]!;
+    for (let i = 0; i < SENSORS; i++) {
+      this.newest[i] = this.#readings[newest + i]!;
+      for (const [s, step] of STEPS.entries())
+        this.future[s * SENSORS + i] = this.#readings[newest + step * SENSORS + i]!;
     }
-  }
-
-  /** Squares of the readings themselves at the steps: what the mean errs. */
-  level(t: number): number {
-    let sum = 0;
-    for (let k = 0; k < OUTPUTS; k++)
-      sum += this.#readings[(t + WINDOW - 1 + STEPS[Math.floor(k / SENSORS)]!) * SENSORS + (k % SENSORS)]! ** 2;
-    return sum;
   }
 }
 
-/** How far readings move on, by the state: every third window learned from. */
-function regressed(states: States): Float64Array {
-  const regression = new ReadoutRegression(states.x.length, OUTPUTS);
+type Readout = ReturnType<OwnReadout['solve']>;
+
+/** What comes, by state and newest reading: every third window learned from. */
+function regressed(states: States): Readout {
+  const regression = new OwnReadout(states.x.length, SENSORS, STEPS.length);
   for (let t = 0; t < LEARNED - HORIZON; t += 3) {
     states.goTo(t);
-    regression.add(states.x, states.moved);
+    regression.add(states.x, states.newest, states.future);
   }
   return regression.solve();
 }
 
 /** Sums of squared errors over all steps, on windows after those learned from: ours, the newest reading held, the mean. */
-function judged(states: States, readout: Float64Array): { ours: number; held: number; mean: number } {
+function judged(states: States, { forecastMap, own }: Readout): { ours: number; held: number; mean: number } {
   const sums = { ours: 0, held: 0, mean: 0 };
   for (let t = LEARNED + HORIZON; t < LEARNED + JUDGED; t += 5) {
     states.goTo(t);
-    sums.mean += states.level(t);
     for (let k = 0; k < OUTPUTS; k++) {
-      let forecast = 0;
-      for (let d = 0; d < states.x.length; d++) forecast += readout[k * states.x.length + d]! * states.x[d]!;
-      sums.ours += (states.moved[k]! - forecast) ** 2;
-      sums.held += states.moved[k]! ** 2;
+      const came = states.future[k]!;
+      const newest = states.newest[k % SENSORS]!;
+      let forecast = own[k]! * newest;
+      for (let d = 0; d < states.x.length; d++) forecast += forecastMap[k * states.x.length + d]! * states.x[d]!;
+      sums.ours += (came - forecast) ** 2;
+      sums.held += (came - newest) ** 2;
+      sums.mean += came ** 2;
     }
   }
   return sums;
