@@ -20,7 +20,8 @@ export function earlierOf(factors: Factors): Earlier {
     toTick: factors.toTick,
     ticks: factors.ticks,
     digest: new Uint8Array(createHash('sha256').update(encodeFactors(factors)).digest()),
-    longestRound: factors.longestRound,
+    // A round goes on after a run; where runs rang out nothing is known of that.
+    longestRound: factors.rungOut === null ? factors.longestRound : 0,
     moments(wish) {
       const moments = momentsFromFactors(factors, wish);
       return moments.origins > 0 ? moments : null;

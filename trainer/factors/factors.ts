@@ -5,6 +5,8 @@
  * the readings, so factors add, fade and are rescaled; nothing in them is a reading but the last stretch, kept so that the
  * next tick joins on exactly.
  */
+import type { RungOut } from './rung-out.ts';
+
 /** What factors are gathered for. */
 export interface FactorsShape {
   readonly site: string;
@@ -110,8 +112,10 @@ export interface Factors extends FactorsShape {
   /** (nc) what levels are counted from: a reading of each channel; NaN: never read. */
   readonly offsets: Float64Array;
   readonly sums: RunSums;
-  /** The ends that are known, the oldest first; of older ones nothing is left and they rang out. */
+  /** The ends that are known, the oldest first. */
   readonly ends: readonly RunEnd[];
+  /** Of older ones, which rang out; null: there are none. */
+  readonly rungOut: RungOut | null;
   readonly open: OpenRun | null;
   readonly waiting: Waiting;
 }

@@ -12,7 +12,8 @@
  * | 56 + n | 8 m | body: float64 |
  *
  * The head names the site and all sizes. The body has, in this order: offsets (nc); the sums as `SUM_ARRAYS` lists them; of each
- * end: weight, isThere (nc), level (nc), changes (nc × places); of the open run, where there is one: isThere (nc), level (nc),
+ * end: weight, isThere (nc), level (nc), changes (nc × places); of
+ * runs that rang out, where there are some: levels, changes (nc × nc × places each); of the open run, where there is one: isThere (nc), level (nc),
  * changes (nc × kept), thinned (nc × thinned); of what waits: last (nc), gap (nc), values (nc × waiting), isExcluded (waiting), watches (ny × 21).
  */
 import { type Site, schemaHash, sha256, toHex } from '@stillwell/protocol';
@@ -31,9 +32,10 @@ const HEAD_AT = 56;
 const ANEW = 'run fit on the whole history to write it anew';
 
 /** What the head says beside the shape. */
-type Head = Omit<Factors, 'offsets' | 'sums' | 'ends' | 'open' | 'waiting'> & {
+type Head = Omit<Factors, 'offsets' | 'sums' | 'ends' | 'rungOut' | 'open' | 'waiting'> & {
   readonly count: number;
   readonly ends: number;
+  readonly hasRungOut: boolean;
   readonly open: { readonly ticks: number; readonly kept: number; readonly thinned: number } | null;
   readonly waiting: number;
 };
@@ -48,11 +50,12 @@ type Head = Omit<Factors, 'offsets' | 'sums' | 'ends' | 'open' | 'waiting'> & {
  * cost    the size of the file
  */
 export function encodeFactors(factors: Factors): Uint8Array {
-  const { offsets, sums, ends, open, waiting, ...shape } = factors;
+  const { offsets, sums, ends, rungOut, open, waiting, ...shape } = factors;
   const head: Head = {
     ...shape,
     count: sums.count,
     ends: ends.length,
+    hasRungOut: rungOut !== null,
     open: open && { ticks: open.ticks, kept: open.changes[0].length, thinned: open.thinned[0].length },
     waiting: waiting.isExcluded.length,
   };
@@ -60,6 +63,7 @@ export function encodeFactors(factors: Factors): Uint8Array {
   const headBytes = 8 * Math.ceil(json.length / 8);
   const body: (Float64Array | Uint8Array)[] = [offsets, ...SUM_ARRAYS.map((key) => sums[key])];
   for (const { weight, isThere, level, changes } of ends) body.push(Float64Array.of(weight), isThere, level, changes);
+  if (rungOut !== null) body.push(rungOut.levels, rungOut.changes);
   if (open !== null) body.push(open.isThere, open.level, ...open.changes, ...open.thinned);
   body.push(waiting.last, waiting.gap, ...waiting.values, waiting.isExcluded, ...waiting.watches);
   const numbers = body.reduce((sum, part) => sum + part.length, 0);
@@ -120,7 +124,7 @@ export function decodeFactors(bytes: Uint8Array, path: string): Factors {
 }
 
 function fromParts(head: Head, body: Float64Array): Factors {
-  const { count, ends: endCount, open: openHead, waiting: waitingTicks, ...shape } = head;
+  const { count, ends: endCount, hasRungOut, open: openHead, waiting: waitingTicks, ...shape } = head;
   const channels = shape.names.length;
   const places = gridOf(shape).lags.length;
   let at = 0;
@@ -140,6 +144,8 @@ function fromParts(head: Head, body: Float64Array): Factors {
     level: next(channels),
     changes: next(channels * places),
   }));
+  const rungLength = channels * channels * places;
+  const rungOut = hasRungOut ? { levels: next(rungLength), changes: next(rungLength) } : null;
   const open: OpenRun | null = openHead && {
     ticks: openHead.ticks,
     isThere: Uint8Array.from(next(channels)),
@@ -155,7 +161,7 @@ function fromParts(head: Head, body: Float64Array): Factors {
     watches: Array.from({ length: shape.signalCount }, () => next(WILD_STATE)),
   };
   if (at !== body.length) throw new RangeError(`The body has ${body.length} numbers, ${at} of them known.`);
-  return Object.freeze({ ...shape, offsets, sums, ends, open, waiting });
+  return Object.freeze({ ...shape, offsets, sums, ends, rungOut, open, waiting });
 }
 
 /**

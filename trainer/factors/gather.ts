@@ -8,8 +8,8 @@ import { Readings } from './readings.ts';
 import { RunBook } from './run-book.ts';
 
 /** Bytes of the ends of runs, about: the more places and channels, the fewer ends are kept. */
-const END_BYTES = 1 << 20;
-const LEAST_ENDS = 4;
+const END_BYTES = 1 << 22;
+const LEAST_ENDS = 8;
 const MOST_ENDS = 64;
 
 /**

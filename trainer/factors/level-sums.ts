@@ -198,6 +198,9 @@ function levelsOfPoles({ shape, poleShape, pairs, paths, recursive }: LevelInput
     const level = levels[c][horizon] - (round === 0 ? 0 : roundWeights[c] * levels[c][horizon + round]);
     for (let f = 0; f < perChannel; f++) from[f] -= growth * recursive.atEnds[r][own + f] * level;
   });
+  if (recursive.rungOut !== null) {
+    for (let f = 0; f < perChannel; f++) from[f] -= growth * recursive.rungOut.levels[c * q + own + f];
+  }
   return settle(poleShape, from, pairs.product('level', c, 0, 'change', d, 0), growth);
 }
 
@@ -210,6 +213,10 @@ function sumsOfPoles({ shape, poleShape, pairs, paths, recursive }: LevelInput, 
     if (end.isThere[c] === 0) return;
     for (let f = 0; f < perChannel; f++) from[f] -= shape.growth * recursive.atEnds[r][own + f];
   });
+  if (recursive.rungOut !== null) {
+    const at = c * poleShape.channels * perChannel + own;
+    for (let f = 0; f < perChannel; f++) from[f] -= shape.growth * recursive.rungOut.there[at + f];
+  }
   return settle(poleShape, from, pairs.single('change', d, 0, c), shape.growth);
 }
 

@@ -4,6 +4,7 @@ import type { Factors } from './factors.ts';
 import { FactorsGatherer, mostEnds } from './gather.ts';
 import { gridOf } from './moments.ts';
 import { MutableSums, SUM_ARRAYS, scaleSums } from './run-sums.ts';
+import { addRungOut, moveRungOut, ringOut } from './rung-out.ts';
 
 /**
  * Factors of everything that either holds, `b` after `a`: as if both had been gathered one after the other with a long gap
@@ -50,13 +51,19 @@ export function mergeFactors(a: Factors, b: Factors): Factors {
   const sums = new MutableSums(newer.sums);
   for (const key of SUM_ARRAYS) for (let k = 0; k < sums[key].length; k++) sums[key][k] += old.sums[key][k];
   sums.count += old.sums.count;
-  const most = mostEnds(a.names.length, gridOf(a).lags.length);
+  const ends = [...old.ends, ...newer.ends];
+  // As a gatherer has it: those of runs that ended, and the open one's.
+  const isOpen = b.open !== null && b.open.ticks >= b.longestHorizon + 2;
+  const most = mostEnds(a.names.length, gridOf(a).lags.length) + (isOpen ? 1 : 0);
+  let rungOut = addRungOut(old.rungOut, 1, newer.rungOut);
+  for (const end of ends.slice(0, -most)) rungOut = ringOut(rungOut, end);
   return Object.freeze({
     ...newer,
     fromTick: a.fromTick,
     ticks: a.ticks + b.ticks,
     sums: sums.copy(),
-    ends: [...old.ends, ...newer.ends].slice(-most),
+    ends: ends.slice(-most),
+    rungOut,
   });
 }
 
@@ -109,6 +116,7 @@ function aboutOffsets(factors: Factors, wanted: Float64Array): Factors {
     offsets: wanted.map((offset, c) => (Number.isNaN(offset) ? factors.offsets[c] : offset)),
     sums: sums.copy(),
     ends: factors.ends.map(shifted),
+    rungOut: moveRungOut(factors, moved),
     open: factors.open && shifted(factors.open),
   };
 }
@@ -128,5 +136,6 @@ export function forget(factors: Factors, ticks: number): Factors {
   const sums = new MutableSums(factors.sums);
   scaleSums(sums, factor);
   const ends = factors.ends.map((end) => ({ ...end, weight: end.weight * factor }));
-  return Object.freeze({ ...factors, sums: sums.copy(), ends });
+  const rungOut = addRungOut(factors.rungOut, factor, null);
+  return Object.freeze({ ...factors, sums: sums.copy(), ends, rungOut });
 }

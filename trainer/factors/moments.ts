@@ -103,6 +103,8 @@ function checkReach(factors: Factors, { bank, horizon, round, scalings }: Moment
   const lag = Math.max(0, ...bank.lags);
   if (lag >= LONGEST_LAG) refuse('ring lags', lag, LONGEST_LAG - 1);
   if (round === null) return;
+  // A round goes on for as long after a run's end, of which nothing is known where runs rang out.
+  if (factors.rungOut !== null) refuse('rounds', round.ticks, 0);
   if (round.ticks > factors.longestRound) refuse('rounds', round.ticks, factors.longestRound);
   if (round.ticks < horizon) throw new RangeError(`A round of ${round.ticks} ticks is shorter than the horizon.`);
 }

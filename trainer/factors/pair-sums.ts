@@ -152,6 +152,7 @@ export class PairSums {
       for (let q = 1; q <= furthest; q++) {
         let last = 0;
         for (const { end, levels, changes } of this.#paths) last += end.weight * levels[i][0] * changes[j][q - 1];
+        if (factors.rungOut !== null) last += factors.rungOut.levels[pair * grid.lags.length + q - 1];
         out[q] = together[q] + growth * (out[q - 1] - last);
       }
     } else {
@@ -196,6 +197,11 @@ export class PairSums {
     let sum = q === 'change' ? sums.changeSums[pair] : sums.levelSums[pair];
     if (k > 0) sum -= q === 'change' ? sums.headSums[pair * longestHorizon + k - 1] : Number.NaN;
     if (k < 0 && q === 'level') for (let x = 0; x < -k; x++) sum += this.#fades[x] * sums.firstSums[pair];
+    if (factors.rungOut !== null && q === 'change') {
+      // Runs that rang out are summed up to their last tick.
+      const from = (c * this.#channels + d) * this.#shape.grid.lags.length;
+      for (let age = 0; age < -k; age++) sum -= this.#fades[age] * factors.rungOut.changes[from + age];
+    }
     for (const { end, levels, changes } of this.#paths) {
       if (end.isThere[c] === 0) continue;
       const values = q === 'change' ? changes[d] : levels[d];

@@ -14,6 +14,8 @@ export interface RecursiveSums {
   readonly ends: Float64Array;
   /** Per run: w(T) φ(T), (q). */
   readonly atEnds: readonly Float64Array[];
+  /** Of the runs that rang out: Σ w φ u_c and Σ w φ at their last ticks, (nc × q); null: there are none. */
+  readonly rungOut: { readonly levels: Float64Array; readonly there: Float64Array } | null;
 }
 
 /**
@@ -52,7 +54,14 @@ export function crossSums(
   for (let i = 0; i < channels; i++) {
     for (let j = 0; j < channels; j++) together[i * channels + j] = pairs.product('change', i, 0, 'change', j, 0);
   }
-  return { ahead, before, together, ends: outer(atEnds, paths, q, growth ** -horizon), atEnds };
+  return {
+    ahead,
+    before,
+    together,
+    ends: outer(atEnds, paths, q, growth ** -horizon),
+    atEnds,
+    rungOut: rungOutOf(shape, poleShape),
+  };
 
   /** cross(k+1) less what stands at the runs' ends. */
   function shifted(k: number): Float64Array {
@@ -113,6 +122,16 @@ function furthestSums(shape: SumsShape, poleShape: PoleShape): Float64Array {
     add(horizon + 2 * round, (_, c) => -roundWeights[c]);
   }
   return out;
+}
+
+function rungOutOf({ factors, grid }: SumsShape, poleShape: PoleShape): RecursiveSums['rungOut'] {
+  const { rungOut } = factors;
+  if (rungOut === null) return null;
+  const memory = memories(poleShape, grid, 0);
+  return {
+    levels: remember(rungOut.levels, memory, grid.lags.length),
+    there: remember(rungOut.changes, memory, grid.lags.length),
+  };
 }
 
 /** Per run w(T) φ(T), T a horizon before its last tick. */

@@ -8,6 +8,7 @@ import { FarLags, nearReach, nearSpread, type RunRows } from './far-lags.ts';
 import type { LagGrid } from './lag-grid.ts';
 import { LagSums, longestTransform } from './lag-sums.ts';
 import { addHeads, addLevels, type BlockOfRun, emptySums, type MutableSums, scaleSums } from './run-sums.ts';
+import { addRungOut, type RungOut, ringOut } from './rung-out.ts';
 
 /** Sizes of the books. */
 export interface BookShape {
@@ -24,6 +25,7 @@ export interface BookShape {
 export interface Books {
   readonly sums: RunSums;
   readonly ends: readonly RunEnd[];
+  readonly rungOut: RungOut | null;
   readonly open: OpenRun | null;
 }
 
@@ -38,6 +40,7 @@ export class RunBook {
   readonly #far: FarLags | null;
   readonly #sums: MutableSums;
   #ends: RunEnd[];
+  #rungOut: RungOut | null;
   /** (nc) of (reach + block): changes of the open run, the newest last; `#filled` of them, the last `#fresh` not yet summed. */
   readonly #changes: Float64Array[];
   readonly #levels: Float64Array[];
@@ -61,6 +64,7 @@ export class RunBook {
     this.#far = this.#near < reach ? new FarLags(channels, grid, reach, halfLifeTicks) : null;
     this.#sums = emptySums(channels, grid.lags.length, shape.longestHorizon, from?.sums ?? null);
     this.#ends = [...(from?.ends ?? [])];
+    this.#rungOut = addRungOut(from?.rungOut ?? null, 1, null);
     this.#changes = Array.from({ length: channels }, () => this.#lags.alloc(room));
     this.#levels = Array.from({ length: channels }, () => this.#lags.alloc(room));
     this.#level = new Float64Array(channels);
@@ -96,7 +100,7 @@ export class RunBook {
     if (isKept) {
       this.#ends.push(this.#endOfRun());
       this.#far?.close(this.#rows());
-      if (this.#ends.length > this.#shape.mostEnds) this.#ends.shift();
+      if (this.#ends.length > this.#shape.mostEnds) this.#rungOut = ringOut(this.#rungOut, this.#ends.shift()!);
     }
     this.#isThere = null;
     this.#ticks = 0;
@@ -117,7 +121,12 @@ export class RunBook {
     this.#lags.drain(this.#sums.lagged);
     this.#far?.drain(this.#sums.lagged);
     const ends = isKept ? [...this.#ends, this.#endOfRun()] : this.#ends;
-    const books = { sums: this.#sums.copy(), ends: [...ends], open: this.#openRun() };
+    const books = {
+      sums: this.#sums.copy(),
+      ends: [...ends],
+      rungOut: addRungOut(this.#rungOut, 1, null),
+      open: this.#openRun(),
+    };
     if (isKept) this.#far?.addRest(this.#rows(), -1);
     return books;
   }
@@ -182,6 +191,7 @@ export class RunBook {
     this.#far?.scale(factor);
     scaleSums(this.#sums, factor);
     this.#ends = this.#ends.map((end) => ({ ...end, weight: end.weight * factor }));
+    this.#rungOut = addRungOut(this.#rungOut, factor, null);
   }
 
   #endOfRun(): RunEnd {
