@@ -25,16 +25,29 @@ const COLLECT_EVERY = 16;
 /** A row of a small answer. */
 export type AnswerRow = Readonly<Record<string, unknown>>;
 
-let collectYoung: (() => void) | null = null;
+let collector: ((options?: { type: 'minor' }) => void) | null = null;
 
 /** Frees chunks no longer used. A full collection would cost more, and waiting for one lets memory grow to hundreds of MB. */
-function collect(): void {
-  if (collectYoung === null) {
+function collect(isFull: boolean): void {
+  if (collector === null) {
     setFlagsFromString('--expose-gc');
-    const gc = runInNewContext('gc') as (options: { type: 'minor' }) => void;
-    collectYoung = () => gc({ type: 'minor' });
+    collector = runInNewContext('gc') as NonNullable<typeof collector>;
   }
-  collectYoung();
+  if (isFull) collector();
+  else collector({ type: 'minor' });
+}
+
+/** Where the library has no build for a machine, text can still be read. */
+async function load(): Promise<typeof import('@duckdb/node-api')> {
+  try {
+    return await import('@duckdb/node-api');
+  } catch (cause) {
+    throw new TrainError(
+      'file',
+      'Parquet and Zstandard files need the library @duckdb/node-api, which cannot be loaded on this machine; give the history as CSV or NDJSON, plain or .gz',
+      { cause },
+    );
+  }
 }
 
 /** One engine for the files of a history. */
@@ -53,7 +66,7 @@ export class ColumnsEngine {
   /** A connection of its own for one file, since a new question ends the stream before it. */
   async connect(): Promise<DuckDBConnection> {
     if (this.#instance === null) {
-      const { DuckDBInstance } = await import('@duckdb/node-api');
+      const { DuckDBInstance } = await load();
       this.#instance = await DuckDBInstance.create(':memory:', {
         threads: '1',
         memory_limit: MEMORY,
@@ -92,7 +105,11 @@ export class ColumnsEngine {
   close(): void {
     for (const connection of this.#connections) connection.closeSync();
     this.#connections = [];
-    this.#instance?.closeSync();
+    if (this.#instance !== null) {
+      this.#instance.closeSync();
+      // What the library held goes with the last of its chunks.
+      collect(true);
+    }
     this.#instance = null;
     if (this.#spill !== null) rmSync(this.#spill, { recursive: true, force: true });
     this.#spill = null;
@@ -120,7 +137,7 @@ export async function* chunksOf(
       const chunk = await result.fetchChunk();
       if (chunk === null || chunk.rowCount === 0) return;
       yield chunk;
-      if (count % COLLECT_EVERY === 0) collect();
+      if (count % COLLECT_EVERY === 0) collect(false);
     }
   } catch (cause) {
     throw engineRefusal(path, cause as Error);

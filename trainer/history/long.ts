@@ -20,7 +20,7 @@ import { LateReading } from './merge.ts';
 import type { OlderFacts, OlderSink } from './older.ts';
 import { type ReadOptions, readShort } from './read.ts';
 import type { LongLimits } from './recent.ts';
-import { type Belongs, digestOfPlain, forgetPlace, identityOf, readPlace } from './saved-place.ts';
+import { type Belongs, digestOfPlain, forgetPlace, identityOf, type Place, readPlace } from './saved-place.ts';
 import { SpanWatch } from './span-watch.ts';
 import { checkZone } from './zone.ts';
 
@@ -154,7 +154,7 @@ async function readLong(
   for (let from = place; ; from = null) {
     const reading = new LongReading(files, site, { ...options, toSort, belongs }, sinkFor(), engine);
     try {
-      await reading.begin(from);
+      if (!(await hasBegun(reading, from, options))) continue;
       await reading.through();
       return readOf(reading, site);
     } catch (cause) {
@@ -163,6 +163,18 @@ async function readLong(
     } finally {
       await reading.close();
     }
+  }
+}
+
+/** Begins a reading; false where a place turns out to be of no use, as after a change of the program. */
+async function hasBegun(reading: LongReading, from: Place | null, { say, resumeFile }: LongOptions): Promise<boolean> {
+  try {
+    await reading.begin(from);
+    return true;
+  } catch (cause) {
+    if (from === null) throw cause;
+    say?.(`${resumeFile}: cannot be gone on from (${(cause as Error).message}), so reading starts anew.`);
+    return false;
   }
 }
 

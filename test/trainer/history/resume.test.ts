@@ -5,7 +5,19 @@ import { join } from 'node:path';
 import { gzipSync } from 'node:zlib';
 import { afterAll, beforeAll, describe, expect, it } from 'vitest';
 import { INTERRUPTED_CODE, type Interrupt, Interrupted } from '../../../trainer/history/interrupt.ts';
-import { columns, copy, LIMITS, ndjson, type Row, rows, type Streamed, stream, wideCsv } from './long-support.ts';
+import { loadLong } from '../../../trainer/history/long.ts';
+import {
+  columns,
+  copy,
+  KeepingSink,
+  LIMITS,
+  ndjson,
+  type Row,
+  rows,
+  type Streamed,
+  stream,
+  wideCsv,
+} from './long-support.ts';
 import { Folder, signal, site } from './support.ts';
 
 const folder = new Folder();
@@ -161,6 +173,25 @@ describe('a place that is of no use', () => {
     expect(await goOn(own)).toMatch(/is damaged or of another version/);
     writeFileSync(PLACE, 'something else');
     expect(await goOn(own)).toMatch(/is damaged or of another version/);
+  });
+  it('starts anew where its parts can no longer be put together', async () => {
+    const own = files();
+    await stop(own);
+    const said: string[] = [];
+    const broken = (): KeepingSink => {
+      const sink = new KeepingSink();
+      sink.restore = () => {
+        throw new Error('another version');
+      };
+      return sink;
+    };
+    const options = { zone: null, limits: LIMITS, resumeFile: PLACE, say: (text: string) => said.push(text) };
+    const { older, done } = await loadLong(own, SITE, options, broken);
+    done();
+    expect(said).toEqual([
+      expect.stringMatching(/cannot be gone on from \(another version\), so reading starts anew\.$/),
+    ]);
+    expect(older?.digest).toEqual((await stream(own, SITE)).loaded.older?.digest);
   });
   it('says in one sentence where it cannot be saved', async () => {
     const resumeFile = join(files()[0]!, 'place');
