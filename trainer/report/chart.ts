@@ -2,7 +2,7 @@
  * Charts as inline SVG text, drawn without a browser so that a report is one file that opens anywhere, offline.
  */
 import * as Plot from '@observablehq/plot';
-import { parseHTML } from 'linkedom';
+import { parseHTML } from 'linkedom/worker';
 
 /** Colours that stay apart for colour-blind readers and in print (Okabe and Ito, 2008, Color Universal Design). */
 export const palette = {
