@@ -202,10 +202,10 @@ function thinned(run: RunRows, c: number, at: number, halfLifeTicks: number | nu
   const to = Math.min(end, centre + THIN * SIDE);
   let sum = 0;
   if (halfLifeTicks !== null) {
-    for (let p = from; p < to; p++) {
-      sum += KERNEL[Math.abs(p - centre)] * row[p] * 2 ** (-(end - 1 - p) / halfLifeTicks);
-    }
-    return sum;
+    const middle = 2 ** (-(end - 1 - centre) / halfLifeTicks);
+    const kernel = weightedKernel(halfLifeTicks);
+    for (let p = from; p < to; p++) sum += kernel[p - centre + THIN * SIDE] * row[p];
+    return middle * sum;
   }
   if (to - from < 2 * THIN * SIDE - 1) {
     for (let p = from; p < to; p++) sum += KERNEL[Math.abs(p - centre)] * row[p];
@@ -219,6 +219,22 @@ function thinned(run: RunRows, c: number, at: number, halfLifeTicks: number | nu
   }
   const last = THIN * SIDE - 1;
   return sum + odd + KERNEL[last] * (row[centre + last] + row[centre - last]);
+}
+
+const weightedKernels = new Map<number, Float64Array>();
+
+/** (2 · 8 · 12) the kernel from its first tick on, each tick weighted against the middle one. */
+function weightedKernel(halfLifeTicks: number): Float64Array {
+  let kernel = weightedKernels.get(halfLifeTicks);
+  if (kernel === undefined) {
+    const length = THIN * SIDE;
+    kernel = Float64Array.from({ length: 2 * length }, (_, at) => {
+      const x = at - length;
+      return x === -length ? 0 : KERNEL[Math.abs(x)] * 2 ** (x / halfLifeTicks);
+    });
+    weightedKernels.set(halfLifeTicks, kernel);
+  }
+  return kernel;
 }
 
 /** (8 · 12) the kernel at whole ticks from its middle. */

@@ -30,6 +30,8 @@ const SIZE_STEP = 4;
 const SHORTEST = 256;
 /** Frequencies of all pairs worked on together, so that the channels' spectra stay near the processor. */
 const TILE = 512;
+/** Beyond it numbers would be divided by nearly nothing. */
+const LEAST_WEIGHT = 1e-30;
 /** Lags spread at a time. */
 const ROWS = 256;
 
@@ -56,6 +58,8 @@ export class LagSums {
   readonly #kernels: Kernels;
   readonly #spectra: Spectra[] = [];
   readonly #how: Spread;
+  /** All that is in counts this much: what is added meanwhile is divided by it, so that ageing costs nothing. */
+  #weight = 1;
 
   /** `rows` numbers more may be asked for by `alloc`. */
   constructor(channels: number, grid: LagGrid, reach: number, how: Spread, rows = 0) {
@@ -107,7 +111,12 @@ export class LagSums {
       return out;
     };
     const windows = earlier.map((row) => transform(row, 0));
-    const blocks = later.map((row, c) => (row === earlier[c] ? windows[c] : transform(row, window - block)));
+    const weight = 1 / this.#weight;
+    const blocks = later.map((row) => {
+      const own = transform(row, window - block);
+      if (weight !== 1) kernels.scale(own, weight, own.length);
+      return own;
+    });
     for (let from = 0; from < half; from += TILE) {
       const to = Math.min(half, from + TILE);
       for (let i = 0; i < this.#channels; i++) {
@@ -132,8 +141,11 @@ export class LagSums {
 
   /** Scales all that is in. */
   scale(factor: number): void {
-    if (factor === 1) return;
-    for (const { pairs } of this.#spectra) for (const pair of pairs) this.#kernels.scale(pair, factor, pair.length);
+    this.#weight *= factor;
+    if (this.#weight > LEAST_WEIGHT) return;
+    for (const { pairs } of this.#spectra)
+      for (const pair of pairs) this.#kernels.scale(pair, this.#weight, pair.length);
+    this.#weight = 1;
   }
 
   /**
@@ -153,6 +165,7 @@ export class LagSums {
       const x = kernels.alloc64(size);
       for (const pair of pairs) {
         kernels.realFftInverse(pair.subarray(0, half), pair.subarray(half), x, size);
+        if (this.#weight !== 1) kernels.scale(x, this.#weight, size);
         // The lags take the place of the spectrum they came from.
         pair.set(x);
       }
@@ -160,6 +173,7 @@ export class LagSums {
       this.spread(pairs, size === longestTransform(this.#reach) ? this.#reach + 1 : size / 2, into, this.#how);
       for (const pair of pairs) pair.fill(0);
     }
+    this.#weight = 1;
   }
 
   /**

@@ -8,7 +8,7 @@ import { FarLags, nearReach, nearSpread, type RunRows } from './far-lags.ts';
 import type { LagGrid } from './lag-grid.ts';
 import { LagSums, longestTransform } from './lag-sums.ts';
 import { addHeads, addLevels, type BlockOfRun, emptySums, type MutableSums, scaleSums } from './run-sums.ts';
-import { addRungOut, type RungOut, ringOut } from './rung-out.ts';
+import { addRungOut, type RungOut, ringOut, scaleRungOut } from './rung-out.ts';
 
 /** Sizes of the books. */
 export interface BookShape {
@@ -41,6 +41,8 @@ export class RunBook {
   readonly #sums: MutableSums;
   #ends: RunEnd[];
   #rungOut: RungOut | null;
+  /** Sums and those of runs that rang out count this much: what is added meanwhile is divided by it. */
+  #weight = 1;
   /** (nc) of (reach + block): changes of the open run, the newest last; `#filled` of them, the last `#fresh` not yet summed. */
   readonly #changes: Float64Array[];
   readonly #levels: Float64Array[];
@@ -100,7 +102,7 @@ export class RunBook {
     if (isKept) {
       this.#ends.push(this.#endOfRun());
       this.#far?.close(this.#rows());
-      if (this.#ends.length > this.#shape.mostEnds) this.#rungOut = ringOut(this.#rungOut, this.#ends.shift()!);
+      if (this.#ends.length > this.#shape.mostEnds) this.#ringOut(this.#ends.shift()!);
     }
     this.#isThere = null;
     this.#ticks = 0;
@@ -118,6 +120,7 @@ export class RunBook {
     const isKept = this.#isThere !== null && this.#sumUp();
     // As if the run ended now, since sums are over ended runs; what that adds is taken back as after a restart.
     if (isKept) this.#far?.addRest(this.#rows(), 1);
+    this.#settleWeight();
     this.#lags.drain(this.#sums.lagged);
     this.#far?.drain(this.#sums.lagged);
     const ends = isKept ? [...this.#ends, this.#endOfRun()] : this.#ends;
@@ -166,7 +169,7 @@ export class RunBook {
     const block: BlockOfRun = {
       changes: this.#changes.map((row) => row.subarray(start, this.#filled)),
       levels: this.#levels.map((row) => row.subarray(start, this.#filled)),
-      weights,
+      weights: weights === null || this.#weight === 1 ? weights : weights.map((value) => value / this.#weight),
       firstTick: this.#ticks - count,
       first: this.#first,
       isThere: this.#isThere!,
@@ -189,9 +192,20 @@ export class RunBook {
     const factor = 2 ** (-ticks / halfLifeTicks);
     this.#lags.scale(factor);
     this.#far?.scale(factor);
-    scaleSums(this.#sums, factor);
+    this.#weight *= factor;
+    if (this.#weight < LEAST_WEIGHT) this.#settleWeight();
     this.#ends = this.#ends.map((end) => ({ ...end, weight: end.weight * factor }));
-    this.#rungOut = addRungOut(this.#rungOut, factor, null);
+  }
+
+  #ringOut(end: RunEnd): void {
+    this.#rungOut = ringOut(this.#rungOut, { ...end, weight: end.weight / this.#weight });
+  }
+
+  #settleWeight(): void {
+    if (this.#weight === 1) return;
+    scaleSums(this.#sums, this.#weight);
+    scaleRungOut(this.#rungOut, this.#weight);
+    this.#weight = 1;
   }
 
   #endOfRun(): RunEnd {
@@ -242,6 +256,9 @@ export class RunBook {
     this.#far.addRest(this.#rows(), -1);
   }
 }
+
+/** Beyond it numbers would be divided by nearly nothing. */
+const LEAST_WEIGHT = 1e-30;
 
 /** (count) weights by age, the newest one. */
 function ageWeights(count: number, halfLifeTicks: number): Float64Array {

@@ -39,6 +39,20 @@ export function ringOut(into: RungOut | null, { weight, isThere, level, changes 
 }
 
 /**
+ * Makes them lighter, in place.
+ *
+ * shapes  as RungOut
+ * units   raw
+ * throws  nothing
+ * source  none
+ * cost    O(nc² places)
+ */
+export function scaleRungOut(sums: RungOut | null, factor: number): void {
+  if (sums === null) return;
+  for (const row of [sums.levels, sums.changes]) for (let k = 0; k < row.length; k++) row[k] *= factor;
+}
+
+/**
  * Those of two spans together, the first as heavy as `factor` says and both counted from the same offsets.
  *
  * shapes  as RungOut
