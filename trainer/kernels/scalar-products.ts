@@ -53,7 +53,7 @@ function pack(
   }
 }
 
-/** One row of a tile, two columns at a time: each element sums its products in order, as a lane does. */
+/** One row of a tile, four columns at a time: each element sums its products in order, as a lane does. */
 function addRow(
   heap: Float64Array,
   to: number,
@@ -65,14 +65,22 @@ function addRow(
   steps: number,
   sign: number,
 ): void {
-  for (let j = 0; j < columns; j += 2) {
-    let low = 0;
-    let high = 0;
+  for (let j = 0; j < columns; j += 4) {
+    let s0 = 0;
+    let s1 = 0;
+    let s2 = 0;
+    let s3 = 0;
     for (let t = 0, left = a, right = b + j; t < steps; t++, left += aStep, right += 8) {
-      low += heap[left] * heap[right];
-      high += heap[left] * heap[right + 1];
+      const f = heap[left];
+      s0 += f * heap[right];
+      s1 += f * heap[right + 1];
+      s2 += f * heap[right + 2];
+      s3 += f * heap[right + 3];
     }
-    heap[to + j * columnStride] += sign * low;
-    if (j + 1 < columns) heap[to + (j + 1) * columnStride] += sign * high;
+    const at = to + j * columnStride;
+    heap[at] += sign * s0;
+    if (j + 1 < columns) heap[at + columnStride] += sign * s1;
+    if (j + 2 < columns) heap[at + 2 * columnStride] += sign * s2;
+    if (j + 3 < columns) heap[at + 3 * columnStride] += sign * s3;
   }
 }

@@ -55,10 +55,26 @@ export function scalarVectors(buffer: ArrayBuffer): VectorLoops & ThinLoops {
 }
 
 function dot(heap: Float64Array, a: number, b: number, n: number): number {
-  const s = [0, 0, 0, 0, 0, 0, 0, 0];
+  let s0 = 0;
+  let s1 = 0;
+  let s2 = 0;
+  let s3 = 0;
+  let s4 = 0;
+  let s5 = 0;
+  let s6 = 0;
+  let s7 = 0;
   let k = 0;
-  for (; k + 7 < n; k += 8) for (let lane = 0; lane < 8; lane++) s[lane] += heap[a + k + lane] * heap[b + k + lane];
-  let sum = s[0] + s[2] + (s[4] + s[6]) + (s[1] + s[3] + (s[5] + s[7]));
+  for (; k + 7 < n; k += 8) {
+    s0 += heap[a + k] * heap[b + k];
+    s1 += heap[a + k + 1] * heap[b + k + 1];
+    s2 += heap[a + k + 2] * heap[b + k + 2];
+    s3 += heap[a + k + 3] * heap[b + k + 3];
+    s4 += heap[a + k + 4] * heap[b + k + 4];
+    s5 += heap[a + k + 5] * heap[b + k + 5];
+    s6 += heap[a + k + 6] * heap[b + k + 6];
+    s7 += heap[a + k + 7] * heap[b + k + 7];
+  }
+  let sum = s0 + s2 + (s4 + s6) + (s1 + s3 + (s5 + s7));
   for (; k < n; k++) sum += heap[a + k] * heap[b + k];
   return sum;
 }
