@@ -59,7 +59,7 @@ export function fitShape(site: Site, extent: Extent, { learnShare, maxBytes }: C
     learnTicks: Math.round(learnShare * recentTicks),
     channelCount: signals.length + inputs.length,
   });
-  const channels = { signals: signals.length, inputs: inputs.length, horizon };
+  const channels = { signals: signals.length, inputs: inputs.length, horizon, recentTicks };
   const factors = factorsBytes(site, extent.ticks);
   return {
     ...channels,
@@ -68,7 +68,6 @@ export function fitShape(site: Site, extent: Extent, { learnShare, maxBytes }: C
     isTight: priced(bundleWork(channels), BUNDLE) > TIGHT_SHARE * maxBytes,
     textBytes: extent.textBytes,
     readings: extent.readings,
-    recentTicks,
     olderTicks: extent.ticks - recentTicks,
     features: featureCount(bank),
   };
@@ -122,10 +121,22 @@ export function memoryWork(shape: FitShape): Work {
   };
 }
 
-/** What a bundle is made of. Names are those of BUNDLE in constants.ts. */
-export function bundleWork(shape: Pick<FitShape, 'signals' | 'inputs' | 'horizon'>): Work {
-  const { signals, inputs, horizon } = shape;
-  return { document: 1, channel: signals + inputs, bound: signals * horizon, map: signals * (signals + inputs) };
+/**
+ * What a bundle is made of: bounds for each step, and a state that is the longer the more there is to forecast and to learn it
+ * from. How long it comes out depends on the plant, so this is right within a factor of two at best. Names are those of
+ * BUNDLE in constants.ts.
+ */
+export function bundleWork({
+  signals,
+  horizon,
+  recentTicks,
+}: Pick<FitShape, 'signals' | 'horizon' | 'recentTicks'>): Work {
+  return {
+    document: 1,
+    bound: signals * horizon,
+    state: Math.sqrt(signals * horizon),
+    learned: signals * Math.log(Math.max(1, recentTicks)),
+  };
 }
 
 /** Work at what one unit of each takes. */
