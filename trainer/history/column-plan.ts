@@ -3,7 +3,7 @@
  * they are asked for. Wrong types are refused here, before any row is read.
  */
 import type { DuckDBConnection } from '@duckdb/node-api';
-import { ask, named, quoted, quotedPath } from './columns-engine.ts';
+import { type AnswerRow, ask, named, quoted, quotedPath } from './columns-engine.ts';
 import { longColumns, timeColumn } from './csv-header.ts';
 import { refusal, shown } from './refusal.ts';
 
@@ -56,15 +56,28 @@ export async function describeColumns(
     path,
     `DESCRIBE SELECT * FROM read_parquet(${file}, hive_partitioning = false)`,
   );
-  const schema = await ask(connection, path, `SELECT name, logical_type FROM parquet_schema(${file})`);
+  const schema = await ask(
+    connection,
+    path,
+    `SELECT name, type, converted_type, logical_type FROM parquet_schema(${file})`,
+  );
   const [facts] = await ask(connection, path, `SELECT num_rows FROM parquet_file_metadata(${file})`);
   return {
     columns: described.map((row) => ({ name: String(row.column_name), type: String(row.column_type) })),
-    instants: new Set(
-      schema.filter((row) => /isAdjustedToUTC=1/.test(String(row.logical_type))).map((row) => String(row.name)),
-    ),
+    instants: new Set(schema.filter(isInstant).map((row) => String(row.name))),
     rows: Number(facts?.num_rows),
   };
+}
+
+/**
+ * True for times normalised to UTC: those that say so; by the format's LogicalTypes.md the older TIMESTAMP_MILLIS and
+ * TIMESTAMP_MICROS, which say nothing; and INT96, as the commonest program that still writes it means it (common practice).
+ */
+function isInstant(row: AnswerRow): boolean {
+  const { type, converted_type: converted, logical_type: logical } = row;
+  if (type === 'INT96' || /isAdjustedToUTC=1/.test(String(logical))) return true;
+  const isOld = logical === null || logical === undefined || logical === '';
+  return isOld && /^TIMESTAMP_/.test(String(converted));
 }
 
 function timeKindOf(path: string, column: Column, instants: ReadonlySet<string>): ColumnTime {
