@@ -3,7 +3,7 @@ import { createHash } from 'node:crypto';
 import type { Earlier } from '../identify/earlier.ts';
 import type { Factors } from './factors.ts';
 import { encodeFactors } from './file.ts';
-import { momentsFromFactors } from './moments.ts';
+import { momentsFromFactors, reachesMemories } from './moments.ts';
 
 /**
  * The time that factors hold.
@@ -23,6 +23,7 @@ export function earlierOf(factors: Factors): Earlier {
     // A round goes on after a run; where runs rang out nothing is known of that.
     longestRound: factors.rungOut === null ? factors.longestRound : 0,
     moments(wish) {
+      if (!reachesMemories(factors, wish.bank)) return null;
       const moments = momentsFromFactors(factors, wish);
       return moments.origins > 0 ? moments : null;
     },

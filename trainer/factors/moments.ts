@@ -7,7 +7,7 @@ import type { Round } from '@stillwell/runtime/filter';
 import { TrainError } from '../errors.ts';
 import { type Bank, featureCount } from '../identify/bank.ts';
 import type { Moments } from '../identify/moments.ts';
-import { flattenPoles, type Poles } from '../identify/poles.ts';
+import { flattenPoles } from '../identify/poles.ts';
 import type { Scaling } from '../identify/scaling.ts';
 import { scaleToAll } from './availability.ts';
 import type { Factors } from './factors.ts';
@@ -27,6 +27,8 @@ export interface MomentsWish {
   readonly round: Round | null;
 }
 
+/** Share of a change that may be left of it, in the slowest memory, at the furthest lag. */
+const MOST_LEFT = 2e-3;
 /** Longest ring lag that factors serve; banks have none beyond. */
 export const LONGEST_LAG = 72;
 
@@ -64,7 +66,7 @@ export function momentsFromFactors(factors: Factors, wish: MomentsWish): Moments
   const poles = flattenPoles(bank);
   const perChannel = bank.decays.length + 2 * bank.resonators.length;
   const growth = factors.halfLifeTicks === null ? 1 : 2 ** (1 / factors.halfLifeTicks);
-  checkHalfLife(factors, poles);
+  checkMemories(factors, bank);
   const round = wish.round?.ticks ?? 0;
   const roundWeights = Float64Array.from({ length: nc }, (_, c) =>
     c < signalCount ? (wish.round?.weight[c] ?? 0) : 0,
@@ -109,19 +111,40 @@ function checkReach(factors: Factors, { bank, horizon, round, scalings }: Moment
   if (round.ticks < horizon) throw new RangeError(`A round of ${round.ticks} ticks is shorter than the horizon.`);
 }
 
-/** Where old ticks fade faster than a memory does, its sums would be differences of numbers that grow without end. */
-function checkHalfLife({ halfLifeTicks, site }: Factors, { poleRe, poleIm, count, level }: Poles): void {
-  if (halfLifeTicks === null) return;
-  for (let m = 0; m < count; m++) {
-    const memory = m === level ? 0 : -1 / Math.log(Math.hypot(poleRe[m], poleIm[m]));
-    if (memory <= halfLifeTicks) continue;
-    throw new TrainError(
-      'factors',
-      `the factors of ${site} have a half-life of ${halfLifeTicks} ticks, shorter than the ${Math.round(memory)} ticks that ` +
-        'the slowest feature remembers; gather them anew with a longer half-life, or none',
-      { details: { halfLifeTicks, memory } },
-    );
-  }
+function checkMemories(factors: Factors, bank: Bank): void {
+  const { halfLifeTicks, site, reach } = factors;
+  const slowest = slowestMemory(bank);
+  if (reachesMemories(factors, bank)) return;
+  const isFaded = halfLifeTicks !== null && slowest > halfLifeTicks;
+  const what = isFaded
+    ? `have a half-life of ${halfLifeTicks} ticks, shorter than`
+    : `reach ${reach} ticks, too few for`;
+  const mend = isFaded ? 'with a longer half-life, or none' : 'for a site of fewer signals';
+  throw new TrainError(
+    'factors',
+    `the factors of ${site} ${what} the ${Math.round(slowest)} ticks that the slowest feature remembers; gather them anew ${mend}`,
+    { details: { halfLifeTicks, reach, memory: slowest } },
+  );
+}
+
+/**
+ * Whether factors serve a bank's memories: what one still holds at the furthest lag is little, and old ticks do not fade faster
+ * than it does, since sums would then be differences of numbers that grow without end.
+ *
+ * shapes  none
+ * units   none
+ * throws  nothing
+ * source  with 0.2 % left out, features of the slowest memories still agree to a few thousandths, as measured
+ * cost    trivial
+ */
+export function reachesMemories({ halfLifeTicks, reach }: Factors, bank: Bank): boolean {
+  const slowest = slowestMemory(bank);
+  return slowest * -Math.log(MOST_LEFT) <= reach && (halfLifeTicks === null || slowest <= halfLifeTicks);
+}
+
+function slowestMemory({ decays, resonators }: Bank): number {
+  const radii = [...decays, ...resonators.map(([re, im]) => Math.hypot(re, im))];
+  return radii.reduce((most, radius) => Math.max(most, -1 / Math.log(radius)), 0);
 }
 
 function emptyMoments(p: number, width: number, origins: number): Moments {

@@ -16,7 +16,7 @@ const HORIZONS = 16;
 const MEMORIES = 12;
 const OTHER_MEMORIES = 8;
 /** Bytes of the spectra while gathering; many channels reach less far, as their banks do. */
-const SPECTRA_BYTES = 80 * 1024 * 1024;
+const SPECTRA_BYTES = 512 * 1024 * 1024;
 /** Numbers of a pair's spectra where lags are shared out. */
 const SHARED_NUMBERS = 2 * 65_536;
 /** As when learning from a history: a gap of this many ticks is long, whatever the horizon. */

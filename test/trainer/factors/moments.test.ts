@@ -84,6 +84,13 @@ describe('a half-life shorter than a memory', () => {
   });
 });
 
+describe('a reach shorter than a memory needs', () => {
+  it('is refused', () => {
+    const factors = gathered(values, ticks, { ...shape, reach: 500 }).end();
+    expect(() => momentsOf(factors, wholeBank)).toThrow(/reach 500 ticks, too few for the 96 ticks/);
+  });
+});
+
 /** Origins one by one, each weighted by its age at tick `newest`. */
 function weighted(values: readonly Float64Array[], bank: Bank, newest: number, halfLife: number): Moments {
   const z = standardised(values, [0, newest + 1], null);
