@@ -25,16 +25,15 @@ const COLLECT_EVERY = 16;
 /** A row of a small answer. */
 export type AnswerRow = Readonly<Record<string, unknown>>;
 
-let collector: ((options?: { type: 'minor' }) => void) | null = null;
+let collector: ((options: { type: 'minor' }) => void) | null = null;
 
 /** Frees chunks no longer used. A full collection would cost more, and waiting for one lets memory grow to hundreds of MB. */
-function collect(isFull: boolean): void {
+function collect(): void {
   if (collector === null) {
     setFlagsFromString('--expose-gc');
     collector = runInNewContext('gc') as NonNullable<typeof collector>;
   }
-  if (isFull) collector();
-  else collector({ type: 'minor' });
+  collector({ type: 'minor' });
 }
 
 /** Where the library has no build for a machine, text can still be read. */
@@ -105,11 +104,7 @@ export class ColumnsEngine {
   close(): void {
     for (const connection of this.#connections) connection.closeSync();
     this.#connections = [];
-    if (this.#instance !== null) {
-      this.#instance.closeSync();
-      // What the library held goes with the last of its chunks.
-      collect(true);
-    }
+    this.#instance?.closeSync();
     this.#instance = null;
     if (this.#spill !== null) rmSync(this.#spill, { recursive: true, force: true });
     this.#spill = null;
@@ -137,7 +132,7 @@ export async function* chunksOf(
       const chunk = await result.fetchChunk();
       if (chunk === null || chunk.rowCount === 0) return;
       yield chunk;
-      if (count % COLLECT_EVERY === 0) collect(false);
+      if (count % COLLECT_EVERY === 0) collect();
     }
   } catch (cause) {
     throw engineRefusal(path, cause as Error);
