@@ -105,7 +105,7 @@ export async function timed(
 }
 
 const COLUMNS = [
-  ['case', 44],
+  ['case', 60],
   ['unit', 12],
   ['ours', 11],
   ['peer', 11],

@@ -52,7 +52,9 @@ export function measure(command: readonly string[]): Promise<Ran> {
       seen = { peakMb: now.peakMb, cpuSeconds: now.cpuSeconds };
       held.push([(performance.now() - started) / 1000, now.heldMb]);
     }, LOOK_MS);
-    const limit = setTimeout(() => child.kill('SIGKILL'), MOST_SECONDS * 1000);
+    const kill = (): void => void child.kill('SIGKILL');
+    const limit = setTimeout(kill, MOST_SECONDS * 1000);
+    process.once('exit', kill);
     const out: Buffer[] = [];
     let error = '';
     child.stdout.on('data', (bytes: Buffer) => out.push(bytes));
@@ -62,6 +64,7 @@ export function measure(command: readonly string[]): Promise<Ran> {
     const end = (): void => {
       clearInterval(look);
       clearTimeout(limit);
+      process.off('exit', kill);
     };
     child.on('error', (problem) => {
       end();

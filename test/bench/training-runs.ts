@@ -48,6 +48,10 @@ export async function* inWorkshop(
 ): AsyncIterable<Row> {
   const folder = mkdtempSync(join(tmpdir(), 'stillwell-bench-'));
   const workshop = { folder, site: join(folder, 'site.yaml'), key: join(folder, 'author.key') };
+  // Hundreds of megabytes must not stay behind where somebody stops a long bench.
+  const clear = (): void => rmSync(folder, { recursive: true, force: true });
+  const stop = (): void => process.exit(130);
+  process.once('exit', clear).once('SIGINT', stop).once('SIGTERM', stop);
   try {
     writeFileSync(workshop.site, plantSite());
     writeFileSync(workshop.key, formatKey(createKeyPair(new Uint8Array(32).fill(7))), { mode: 0o600 });
@@ -56,7 +60,8 @@ export async function* inWorkshop(
     if (!(error instanceof FailedRun)) throw error;
     note(error.message);
   } finally {
-    rmSync(folder, { recursive: true, force: true });
+    process.off('exit', clear).off('SIGINT', stop).off('SIGTERM', stop);
+    clear();
   }
 }
 
@@ -92,7 +97,7 @@ function seal({ key }: Workshop, out: string, bundle: string): Promise<Ran> {
   return measure([STILLWELL, 'seal', ...words, '--override', 'a bench, whatever its skill']);
 }
 
-/** Time of a fit by step and the most memory held meanwhile, in a line. */
+/** Time of a fit by step and the most memory held meanwhile, in a line. What is written after the steps counts to the start. */
 export function stepsOf({ seconds, cpuSeconds, peakMb, fitted, said }: Sealed): string {
   const laps = Object.entries(said.timings_ms);
   const known = laps.reduce((sum, [, ms]) => sum + ms / 1000, 0);
