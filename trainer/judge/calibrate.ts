@@ -20,7 +20,7 @@ const MOST_ORIGINS = 4000;
 
 /**
  * Calibrates. `limits` are those that the site declares, null where crossings need not be looked at; `standing` is the
- * model warmed up on what lies before the span, for replays to go on from.
+ * model warmed up on what lies before the span, for the replay of errors to go on from.
  *
  * shapes  model before calibration (its guard open); span of indices into the series
  * units   standardised; limits in the signals' units
@@ -74,8 +74,7 @@ export function calibrate(
   });
   const bounds = { residualScale, radius, boundsLongRate: LONG_RATE };
   const guard = settleGuard({ ...model, ...bounds }, series, span, first, second);
-  const crossing =
-    limits === null ? {} : learnCrossing({ ...model, ...bounds, ...guard }, series, span, limits, standing);
+  const crossing = limits === null ? {} : learnCrossing({ ...model, ...bounds, ...guard }, series, span, limits);
   return { ...bounds, ...guard, ...crossing };
 }
 

@@ -9,7 +9,7 @@ import type { Series } from '../history/series.ts';
 import type { TickSpan } from '../span.ts';
 import { type AskedLimit, askEvery, type CrossingPair, Crossings, usualLimits } from './crossings.ts';
 import { crossingTable } from './reliability.ts';
-import { type Moment, replay, type Standing } from './replay.ts';
+import { type Moment, replay } from './replay.ts';
 
 /** Shares of the one-step error that are tried; the first stands where nothing is crossed that could tell. */
 const FRESH = [0.5, 1, 0.25] as const;
@@ -44,7 +44,7 @@ interface Asked {
  * learned from the usual limits, or from declared ones near those where they are crossed often enough: alarms are seldom
  * crossed, while what is said of a plant's own cycle can be far off. It holds where the signal often goes, not for alarms.
  *
- * shapes  calibrated model; span of indices into the series; standing as in `replay`
+ * shapes  calibrated model; span of indices into the series
  * units   limits in the signals' units
  * throws  FilterError if the model does not fit the series
  * source  see reliability.ts
@@ -55,7 +55,6 @@ export function learnCrossing(
   series: Series,
   span: TickSpan,
   declared: readonly AskedLimit[],
-  standing?: Standing,
 ): LearnedCrossing {
   const H = model.horizon;
   const usual = usualLimits(series, { fromTick: 0, toTick: span.fromTick });
@@ -78,7 +77,7 @@ export function learnCrossing(
     });
     return { crossingFresh, signals };
   });
-  const every = askEvery(span.toTick - span.fromTick - H, usual.length + declared.length, H);
+  const every = askEvery(span.toTick - span.fromTick - H, usual.length + declared.length);
   const ask = (moment: Moment): void => {
     if ((moment.at - span.fromTick) % every !== 0 || series.excluded?.isExcluded[moment.at] === 1) return;
     for (const { signals } of asked) {
@@ -87,7 +86,7 @@ export function learnCrossing(
       }
     }
   };
-  replay(model, series, span, ask, { wantsBounds: () => false, standing });
+  replay(model, series, span, ask, { wantsBounds: () => false });
   const scored = asked.map((one) => ({ ...one, brier: brier(one.signals.flatMap(allOf)) }));
   const isTold = cameTrue(scored[0].signals.flatMap(({ usual }) => usual.pairs)) >= LEAST_CROSSINGS;
   const { crossingFresh, signals } = isTold ? scored.reduce((a, b) => (b.brier < a.brier ? b : a)) : scored[0];

@@ -7,7 +7,6 @@ import { crossing, FOLDED, type Model } from '@stillwell/runtime/filter';
 import { quantiles } from '../history/order-statistics.ts';
 import type { Series } from '../history/series.ts';
 import type { TickSpan } from '../span.ts';
-import { scoreEvery } from './origin-budget.ts';
 import type { Moment } from './replay.ts';
 
 /** A limit that is asked about, in the signal's unit. */
@@ -34,14 +33,9 @@ const LIMIT_SHARES = [0.05, 0.2, 0.8, 0.95] as const;
 const MOST_ORIGINS = 800;
 const MOST_QUESTIONS = 40_000;
 
-/**
- * Every how many-th origin is asked at, so that many signals or a long time take no longer than they tell. Of more origins
- * than are scored, two in a horizon: nearer ones ask nearly the same question.
- */
-export function askEvery(origins: number, limits: number, horizon: number): number {
-  const most = Math.min(MOST_ORIGINS, Math.ceil(MOST_QUESTIONS / Math.max(1, limits)));
-  const every = Math.max(1, Math.floor(origins / most));
-  return scoreEvery(origins) > 1 ? Math.max(every, Math.floor(horizon / 2)) : every;
+/** Every how many-th origin is asked at, so that many signals or a long time take no longer than they tell. */
+export function askEvery(origins: number, limits: number): number {
+  return Math.max(1, Math.floor(origins / Math.min(MOST_ORIGINS, Math.ceil(MOST_QUESTIONS / Math.max(1, limits)))));
 }
 
 /** The limits a site file declares, by signal. */

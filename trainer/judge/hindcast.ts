@@ -121,7 +121,7 @@ export function hindcast(model: Model, series: Series, span: HindcastSpan, units
   const { limits = [] } = span;
   const asked = limits.length > 0 || learn === null ? limits : usualLimits(series, learn);
   const crossings = new Crossings(model, asked, readings, to);
-  const every = askEvery(to - from - H + 1, asked.length, H);
+  const every = askEvery(to - from - H + 1, asked.length);
   replay(
     model,
     series,

@@ -45,8 +45,6 @@ export interface ReplayOptions {
   readonly planner?: Planner | null;
   /** At which indices `lower` and `upper` are worked out; at the others they are left as they were. All by default. */
   readonly wantsBounds?: (at: number) => boolean;
-  /** From where the filter goes on, in place of warming up once more; the bounds start there as calibrated. */
-  readonly standing?: Standing | undefined;
 }
 
 /**
@@ -62,14 +60,14 @@ export function replay(
   series: Series,
   span: TickSpan,
   visit: (moment: Moment) => void,
-  { planner = null, wantsBounds = () => true, standing }: ReplayOptions = {},
+  { planner = null, wantsBounds = () => true }: ReplayOptions = {},
 ): void {
   const bounds: Bounds = createBounds(model);
   const lower = new Float64Array(model.signalCount * model.horizon);
   const upper = new Float64Array(lower.length);
   const isLong = scoreEvery(span.toTick - span.fromTick) > 1;
   const trackedFrom = isLong ? span.fromTick - MOST_TRACKED : Number.NEGATIVE_INFINITY;
-  run(model, series, span, { planner, isVisited: (at) => at >= trackedFrom, standing }, (at, state, median) => {
+  run(model, series, span, { planner, isVisited: (at) => at >= trackedFrom }, (at, state, median) => {
     trackBounds(model, bounds, state, median);
     if (at < span.fromTick) return;
     if (wantsBounds(at)) intervalOf(model, bounds, state, median, lower, upper);

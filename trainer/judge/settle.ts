@@ -1,6 +1,6 @@
 /**
  * All that a candidate gets from the calibration part: bounds, guards and what is said of limits. Where that part is long,
- * the replays that find them go on from one warmed-up filter, in place of warming up each for itself.
+ * the replays that score errors go on from one warmed-up filter, in place of warming up each for itself.
  */
 import type { Model, StuckGuard } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';

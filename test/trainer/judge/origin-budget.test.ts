@@ -1,6 +1,5 @@
 /** Thinning of origins: none below the budget, and above it scores that say the same. */
 import { describe, expect, test } from 'vitest';
-import { askEvery } from '../../../trainer/judge/crossings.ts';
 import { hindcast } from '../../../trainer/judge/hindcast.ts';
 import { scoreEvery } from '../../../trainer/judge/origin-budget.ts';
 import { replayError, replayMse } from '../../../trainer/judge/replay-scores.ts';
@@ -14,14 +13,6 @@ test.each([
   [6001, 2],
   [12_741, 3],
 ])('of %d origins every %d. is scored', (origins, every) => expect(scoreEvery(origins)).toBe(every));
-
-test.each([
-  [6000, 8, 60, 7],
-  [6001, 8, 60, 30],
-  [12_741, 32, 6, 15],
-])('of %d origins, %d limits and %d steps every %d. is asked about limits', (origins, limits, horizon, every) => {
-  expect(askEvery(origins, limits, horizon)).toBe(every);
-});
 
 describe('a hindcast of more origins than are scored', () => {
   const model = syntheticModel({ horizon: 6 });
