@@ -30,8 +30,8 @@ export interface ReplayChoice {
  * source  none
  * cost    one replay
  */
-export function replayError(model: Model, series: Series, span: TickSpan): number {
-  return meanOf(replayMse(model, series, span));
+export function replayError(model: Model, series: Series, span: TickSpan, choice: ReplayChoice = {}): number {
+  return meanOf(replayMse(model, series, span, choice));
 }
 
 /**

@@ -8,7 +8,7 @@ import { TrainError } from '../errors.ts';
 import type { Series } from '../history/series.ts';
 import { scoreEvery } from '../judge/origin-budget.ts';
 import { standingAt } from '../judge/replay.ts';
-import { replayMse } from '../judge/replay-scores.ts';
+import { replayError } from '../judge/replay-scores.ts';
 import { meanOf } from '../judge/scores.ts';
 import type { TickSpan } from '../span.ts';
 
@@ -44,7 +44,7 @@ export function auditErrors(
   const errorOf = (model: Model): number => {
     const before = { ...span, fromTick: span.fromTick - 1 };
     const standing = isLong ? standingAt(model, series, before, before.fromTick, true) : undefined;
-    return meanOf(replayMse(model, series, span, { standing }));
+    return replayError(model, series, span, { standing });
   };
   const floatMse = errorOf(float);
   const quantisedMse = isLong ? errorOf(rounded) : meanOf(known);
