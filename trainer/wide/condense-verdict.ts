@@ -19,11 +19,12 @@ export function condenseSkill(score: CondenseScore | null): number | null {
 
 /** The sentence, and whether it is a good one. */
 export function condenseVerdict(
-  { record }: Condenser,
+  { record, own }: Condenser,
   score: CondenseScore | null,
 ): { readonly hasSkill: boolean; readonly skill: number | null; readonly sentence: string } {
   const skill = condenseSkill(score);
-  const states = record.order === 1 ? '1 state' : `${record.order} states`;
+  const few = record.order === 1 ? '1 state' : `${record.order} states`;
+  const states = own.some((value) => value !== 0) ? `${few} and the newest frame` : few;
   if (skill === null)
     return { hasSkill: false, skill, sentence: `${states}; no held-out time was long enough to judge.` };
   const by = Math.abs(100 * skill).toFixed(1);
