@@ -1,6 +1,7 @@
 /** Values of command-line options, checked where they are read. */
-import { BUNDLE_KINDS } from '@stillwell/protocol';
+import { BUNDLE_KINDS, parseDuration, type Site } from '@stillwell/protocol';
 import { InvalidArgumentError, Option } from 'commander';
+import { TrainError } from './errors.ts';
 
 /** A parser for a whole number from `least` to `most`. */
 export function wholeNumber(least: number, most: number = Number.MAX_SAFE_INTEGER): (text: string) => number {
@@ -44,6 +45,37 @@ export function kindOption(): Option {
   )
     .choices(['auto', ...BUNDLE_KINDS])
     .default('auto');
+}
+
+/** The option after how long a reading counts half; in milliseconds. */
+export function halfLifeOption(): Option {
+  return new Option(
+    '--half-life <duration>',
+    'time after which a reading in the factors counts half, such as 180d; by default all count alike',
+  ).argParser((text) => {
+    const ms = parseDuration(text);
+    if (ms === null || ms <= 0) throw new InvalidArgumentError('Expected a length of time such as 180d.');
+    return ms;
+  });
+}
+
+/** Horizons that a half-life holds at least: what fades sooner is never learned. */
+const LEAST_HALF_LIFE = 10;
+
+/**
+ * A half-life in ticks of a site.
+ *
+ * throws  TrainError 'options' where it is too short for the site's horizon
+ */
+export function halfLifeTicks(ms: number | undefined, site: Site): number | null {
+  if (ms === undefined) return null;
+  const ticks = Math.round(ms / site.tickMs);
+  if (ticks >= LEAST_HALF_LIFE * site.horizon) return ticks;
+  throw new TrainError(
+    'options',
+    `--half-life: expected at least ${LEAST_HALF_LIFE} horizons of ${site.site}, ${LEAST_HALF_LIFE * site.horizon} ticks, got ${ticks}; take a longer one`,
+    { details: { ticks } },
+  );
 }
 
 /** Gathers a repeated option. */
