@@ -4,6 +4,7 @@
  */
 import type { Round } from '@stillwell/runtime/filter';
 import { TrainError } from '../errors.ts';
+import { cholesky } from '../linalg/cholesky.ts';
 import type { Learned } from '../quantise/quantise.ts';
 import { type Bank, designBank, featureCount, settlingTicks } from './bank.ts';
 import { partition, usableBlocks } from './blocks.ts';
@@ -54,6 +55,8 @@ const MOST_DIRECTIONS = 96;
 const MOST_ENTRIES = 4e7;
 /** Share by which each variance is raised, and the least share of the largest variance that counts as one. */
 const RAISED = 1e-9;
+/** Moments of the time before are told to six digits or seven: each variance is raised as far as they need, at most by this. */
+const MOST_RAISED = 1e-4;
 const SILENT = 1e-6;
 
 /**
@@ -83,7 +86,7 @@ export function learn(given: LearnInput): LearnOutput {
   const learning = before === null ? gathered.learning : addInto(before, gathered.learning);
   return {
     choice,
-    learned: mapAndDirections(pick(learning), { ...layout, featureCount: choice.kept.length }, choice),
+    learned: mapAndDirections(pick(learning), { ...layout, featureCount: choice.kept.length }, choice, before !== null),
     calibration: pick(gathered.calibration),
     usesLongGaps: cut.usesLongGaps,
     notes: widthNotes(input, layout, trials.steps.length),
@@ -132,7 +135,7 @@ export function learnAgain(given: LearnInput, choice: Choice, ticks: number): Le
   const blocks = usableBlocks(settle, ticks, input.horizon, input.filled.inLongGap);
   const own = gatherSum(momentInput(input, choice.bank), blocks);
   const before = input.earlier?.of(choice.bank) ?? null;
-  return mapAndDirections(before === null ? own : addInto(before, own), layout, choice);
+  return mapAndDirections(before === null ? own : addInto(before, own), layout, choice, before !== null);
 }
 
 /** What learning sees: the history less its rounds. */
@@ -150,9 +153,9 @@ function layoutOf(input: LearnInput, bank: Bank): Layout {
   };
 }
 
-function mapAndDirections(moments: Moments, layout: Layout, choice: Choice): Learned {
+function mapAndDirections(moments: Moments, layout: Layout, choice: Choice, hasEarlier: boolean): Learned {
   const map = twoStageMap(aboutMeans(moments), layout, choice.plan);
-  const covariance = steadyCovariance(moments, layout);
+  const covariance = steadyCovariance(moments, layout, hasEarlier);
   const bottleneck = findDirections(covariance, map, layout, MOST_DIRECTIONS);
   const order = bottleneck.carried.length;
   const state = stateMoments(bottleneck.directions, order, covariance, map, layout);
@@ -165,15 +168,35 @@ function mapAndDirections(moments: Moments, layout: Layout, choice: Choice): Lea
  * Mean products of the features, each variance raised by a hair, so that copies of a signal and silent features leave it
  * positive definite; whatever follows is then consistent with one and the same matrix.
  */
-function steadyCovariance(moments: Moments, layout: Layout): Float64Array {
+function steadyCovariance(moments: Moments, layout: Layout, hasEarlier: boolean): Float64Array {
   const p = layout.channelCount * layout.featureCount;
   const covariance = moments.features.map((sum) => sum / moments.origins);
+  let raised = withRaised(covariance, p, RAISED);
+  if (!hasEarlier) return raised;
+  for (let share = 10 * RAISED; share < 1.01 * MOST_RAISED && !isPositiveDefinite(raised, p); share *= 10) {
+    raised = withRaised(covariance, p, share);
+  }
+  return raised;
+}
+
+function withRaised(covariance: Float64Array, p: number, share: number): Float64Array {
+  const raised = covariance.slice();
   let largest = 0;
   for (let f = 0; f < p; f++) largest = Math.max(largest, covariance[f * p + f]);
   for (let f = 0; f < p; f++) {
-    covariance[f * p + f] += RAISED * (largest > 0 ? Math.max(covariance[f * p + f], SILENT * largest) : 1);
+    raised[f * p + f] += share * (largest > 0 ? Math.max(covariance[f * p + f], SILENT * largest) : 1);
   }
-  return covariance;
+  return raised;
+}
+
+function isPositiveDefinite(matrix: Float64Array, p: number): boolean {
+  try {
+    cholesky(matrix.slice(), p);
+    return true;
+  } catch (error) {
+    if (error instanceof TrainError) return false;
+    throw error;
+  }
 }
 
 function momentInput({ filled, signalCount, horizon }: LearnInput, bank: Bank): MomentInput {

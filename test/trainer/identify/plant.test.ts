@@ -136,4 +136,36 @@ describe('a linear-Gaussian plant', () => {
     expect(both).toBeLessThan(alone);
     expect(both - whole).toBeLessThan(0.001);
   });
+
+  it('stands moments of the time before that are told to six digits only, though features are nearly copies', () => {
+    const ticks = 3200;
+    const values = simulate(ticks, 3);
+    const { learned } = learn({
+      filled: {
+        values,
+        isRead: values.map(() => new Uint8Array(ticks).fill(1)),
+        inLongGap: new Uint8Array(ticks),
+      },
+      signalCount: 2,
+      horizon: H,
+      periodTicks: 0,
+      otherPeriods: [],
+      learnTicks: 2400,
+      calibrateTicks: 800,
+      round: null,
+      earlier: {
+        ticks,
+        of: (bank) => {
+          const [moments] = gatherMoments({ values, signalCount: 2, bank, horizon: H }, [
+            { fromIndex: 1, toIndex: ticks - H },
+          ]);
+          const p = moments!.featureSums.length;
+          for (let f = 0; f < p; f++) moments!.features[f * p + f]! *= 1 - 1e-5;
+          return moments!;
+        },
+      },
+    });
+    expect(learned.map.every(Number.isFinite)).toBe(true);
+    expect(learned.bottleneck.carried.length).toBeGreaterThan(0);
+  });
 });
