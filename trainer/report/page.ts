@@ -88,10 +88,14 @@ look after first. Measured on ${reliance.origins} forecasts of held-out time.</p
 ${relianceTable(reliance, hindcast.signals)}`;
 }
 
-function summary(site: Site, { hindcast, verdicts, document }: FitResult): string {
+function summary(site: Site, { hindcast, verdicts, document, earlier }: FitResult): string {
+  const before =
+    earlier === null
+      ? ''
+      : ` · learned from ${earlier.ticks} ticks before that, since ${moment(earlier.fromTick * site.tickMs)}`;
   const span = `${moment(hindcast.fromMs)} to ${moment(hindcast.toMs)}`;
   return `<p class="meta">${escapeHtml(site.equipmentClass)} · tick ${spanText(site.tickMs)} · forecasts to
-${spanText(site.tickMs * hindcast.horizon)} ahead · bundle ${plainNumber(document.length / 1024)} KiB · judged on ${span}</p>
+${spanText(site.tickMs * hindcast.horizon)} ahead · bundle ${plainNumber(document.length / 1024)} KiB · judged on ${span}${before}</p>
 <p class="verdict${verdicts.hasSkill ? '' : ' bad'}"><strong>${escapeHtml(verdicts.sentence)}</strong></p>`;
 }
 

@@ -21,7 +21,7 @@ function triedRows({ chosen }: FitResult): string[][] {
 
 /** The table. */
 export function record(result: FitResult): string {
-  const { bundle, chosen, audit, learn, calibrate } = result;
+  const { bundle, chosen, audit, learn, calibrate, earlier } = result;
   const tick = bundle.tickMs;
   const again = `${moment(bundle.provenance.firstMs)} to ${moment(bundle.provenance.lastMs + tick)}`;
   const hex = (bytes: Uint8Array): string => Buffer.from(bytes).toString('hex');
@@ -29,6 +29,14 @@ export function record(result: FitResult): string {
     ['', ''],
     [
       ['learned from', `${moment(learn.fromTick * tick)} to ${moment(learn.toTick * tick)}`],
+      ...(earlier === null
+        ? []
+        : [
+            [
+              'and by their factors from',
+              `${moment(earlier.fromTick * tick)} to ${moment(earlier.toTick * tick)}, ${earlier.ticks} ticks`,
+            ],
+          ]),
       ...(isLearnedAgain(result) ? [['after judging, once more from', again]] : []),
       ['penalties and bounds from', `${moment(calibrate.fromTick * tick)} to ${moment(calibrate.toTick * tick)}`],
       ['model', `${chosen.kind} kind: ${escapeHtml(chosen.name)}`],

@@ -57,6 +57,15 @@ describe('the page', () => {
     expect(first).toContain(spellName(overall[0]!.fromMs, spellMs));
   });
 
+  test('says what time before the window was learned from', () => {
+    expect(page).not.toContain('by their factors');
+    const earlier = { fromTick: result.learn.fromTick - 9000, toTick: result.learn.fromTick, ticks: 8760 };
+    const survey = { findings: [] } as unknown as Parameters<typeof fitReport>[0]['survey'];
+    const long = fitReport({ site, survey, result: { ...result, earlier } });
+    expect(long).toMatch(/learned from 8760 ticks before that, since \d{4}-\d\d-\d\d/);
+    expect(long).toMatch(/by their factors from<\/t[dh]><td[^>]*>[^<]* to [^<]*, 8760 ticks/);
+  });
+
   test('holds no number that is none, and loads nothing from elsewhere', () => {
     expect(page.replace(/<[^>]*>/g, ' ')).not.toMatch(/NaN|undefined|null|Infinity/);
     expect(page).not.toMatch(/<(script|link|img|iframe)/);
