@@ -13,6 +13,7 @@
  */
 import type { LagGrid } from './lag-grid.ts';
 import { LagSums, longestTransform, type Spread } from './lag-sums.ts';
+import type { Carrier } from './open-state.ts';
 
 /** Ticks to a thinned one. */
 export const THIN = 8;
@@ -116,11 +117,22 @@ export class FarLags {
    */
   addRest(run: RunRows, sign: 1 | -1): void {
     this.#sumUp();
+    // What is thinned here goes again, and must not push out what came before.
+    if (this.#filled + 2 * SIDE + 1 > this.#earlier[0].length) this.#makeRoom();
     const [filled, next] = [this.#filled, this.#next];
     this.#thin(run, Math.floor((run.ticks - 1) / THIN) + SIDE);
     this.#sumUp(sign);
     this.#filled = filled;
     this.#next = next;
+  }
+
+  /** Takes all it holds along, or brings it back. */
+  carry(carrier: Carrier): void {
+    this.#lags.carry(carrier);
+    this.#filled = carrier.number(this.#filled);
+    this.#fresh = carrier.number(this.#fresh);
+    this.#next = carrier.number(this.#next);
+    for (const row of new Set([...this.#earlier, ...this.#later])) carrier.fill(row.subarray(0, this.#filled));
   }
 
   /** Makes all that is in lighter. */

@@ -1,34 +1,24 @@
 /**
- * Factors as a file, `.swf`: little-endian, every part a multiple of eight bytes.
- *
- * | offset | size | meaning |
- * | --- | --- | --- |
- * | 0 | 8 | magic, "swfactor" |
- * | 8 | 4 | version, 1 |
- * | 12 | 4 | n, bytes of the head, a multiple of 8 |
- * | 16 | 8 | m, float64 numbers of the body |
- * | 24 | 32 | SHA-256 over bytes 0..23 and 56 to the end |
- * | 56 | n | head: JSON, filled up with spaces |
- * | 56 + n | 8 m | body: float64 |
+ * Factors as a file, `.swf`: an envelope (envelope.ts) of magic "swfactor" and version 1.
  *
  * The head names the site and all sizes. The body has, in this order: offsets (nc); the sums as `SUM_ARRAYS` lists them; of each
  * end: weight, isThere (nc), level (nc), changes (nc × places); of
  * runs that rang out, where there are some: levels, changes (nc × nc × places each); of the open run, where there is one: isThere (nc), level (nc),
  * changes (nc × kept), thinned (nc × thinned); of what waits: last (nc), gap (nc), values (nc × waiting), isExcluded (waiting), watches (ny × 21).
  */
-import { type Site, schemaHash, sha256, toHex } from '@stillwell/protocol';
+import { type Site, schemaHash, toHex } from '@stillwell/protocol';
 import { TrainError } from '../errors.ts';
 import { channelsOf } from '../history/channels.ts';
 import { readBytesFile } from '../key-file.ts';
+import { type EnvelopeKind, openEnvelope, sealEnvelope } from './envelope.ts';
 import type { Factors, OpenRun, RunEnd, RunSums, Waiting } from './factors.ts';
 import { gridOf } from './moments.ts';
 import { SUM_ARRAYS, sumLengths } from './run-sums.ts';
 import { WILD_STATE } from './wild.ts';
 
-const MAGIC = 'swfactor';
 /** Version written, and the only one read. */
 export const FACTORS_VERSION = 1;
-const HEAD_AT = 56;
+const FILE: EnvelopeKind = { magic: 'swfactor', version: FACTORS_VERSION, noun: 'factors file' };
 const ANEW = 'run fit on the whole history to write it anew';
 
 /** What the head says beside the shape. */
@@ -59,30 +49,12 @@ export function encodeFactors(factors: Factors): Uint8Array {
     open: open && { ticks: open.ticks, kept: open.changes[0].length, thinned: open.thinned[0].length },
     waiting: waiting.isExcluded.length,
   };
-  const json = new TextEncoder().encode(JSON.stringify(head));
-  const headBytes = 8 * Math.ceil(json.length / 8);
   const body: (Float64Array | Uint8Array)[] = [offsets, ...SUM_ARRAYS.map((key) => sums[key])];
   for (const { weight, isThere, level, changes } of ends) body.push(Float64Array.of(weight), isThere, level, changes);
   if (rungOut !== null) body.push(rungOut.levels, rungOut.changes);
   if (open !== null) body.push(open.isThere, open.level, ...open.changes, ...open.thinned);
   body.push(waiting.last, waiting.gap, ...waiting.values, waiting.isExcluded, ...waiting.watches);
-  const numbers = body.reduce((sum, part) => sum + part.length, 0);
-  const bytes = new Uint8Array(HEAD_AT + headBytes + 8 * numbers);
-  const view = new DataView(bytes.buffer);
-  bytes.set(new TextEncoder().encode(MAGIC));
-  view.setUint32(8, FACTORS_VERSION, true);
-  view.setUint32(12, headBytes, true);
-  view.setBigUint64(16, BigInt(numbers), true);
-  bytes.fill(0x20, HEAD_AT, HEAD_AT + headBytes);
-  bytes.set(json, HEAD_AT);
-  const out = new Float64Array(bytes.buffer, HEAD_AT + headBytes, numbers);
-  let at = 0;
-  for (const part of body) {
-    out.set(part, at);
-    at += part.length;
-  }
-  bytes.set(sha256(bytes.subarray(0, 24), bytes.subarray(HEAD_AT)), 24);
-  return bytes;
+  return sealEnvelope(FILE, JSON.stringify(head), body);
 }
 
 /**
@@ -100,24 +72,9 @@ export function decodeFactors(bytes: Uint8Array, path: string): Factors {
       details: { path },
     });
   };
-  if (bytes.length < 8 || new TextDecoder().decode(bytes.subarray(0, 8)) !== MAGIC) return refuse('not a factors file');
-  if (bytes.length < HEAD_AT) return refuse(`cut short: ${bytes.length} bytes, expected at least ${HEAD_AT}`);
-  const view = new DataView(bytes.buffer, bytes.byteOffset, bytes.byteLength);
-  const version = view.getUint32(8, true);
-  if (version !== FACTORS_VERSION)
-    return refuse(`factors of version ${version}, this program reads ${FACTORS_VERSION}`);
-  const headBytes = view.getUint32(12, true);
-  const numbers = Number(view.getBigUint64(16, true));
-  const expected = HEAD_AT + headBytes + 8 * numbers;
-  if (bytes.length < expected) return refuse(`cut short: ${bytes.length} bytes, expected ${expected}`);
-  if (bytes.length > expected) return refuse(`${bytes.length - expected} bytes too many, expected ${expected}`);
-  const digest = sha256(bytes.subarray(0, 24), bytes.subarray(HEAD_AT));
-  if (Buffer.compare(digest, bytes.subarray(24, HEAD_AT)) !== 0) return refuse('damaged: its SHA-256 does not match');
+  const { head, body } = openEnvelope(FILE, bytes, refuse);
   try {
-    const head = JSON.parse(new TextDecoder().decode(bytes.subarray(HEAD_AT, HEAD_AT + headBytes))) as Head;
-    // A copy, since the body need not lie on a multiple of eight in the memory it came in.
-    const body = new Float64Array(bytes.slice(HEAD_AT + headBytes).buffer);
-    return fromParts(head, body);
+    return fromParts(JSON.parse(head) as Head, body);
   } catch (cause) {
     throw new TrainError('factors', `${path}: its sizes contradict each other; ${ANEW}`, { cause, details: { path } });
   }

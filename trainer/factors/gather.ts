@@ -2,8 +2,8 @@
 import { TrainError } from '../errors.ts';
 import type { Series } from '../history/series.ts';
 import type { Factors, FactorsShape } from './factors.ts';
-import { decodeFactors, encodeFactors } from './file.ts';
 import { gridOf } from './moments.ts';
+import { bringState, type Carrier, takeState } from './open-state.ts';
 import { Readings } from './readings.ts';
 import { RunBook } from './run-book.ts';
 
@@ -81,15 +81,20 @@ export class FactorsGatherer {
     this.#ticks += series.ticks;
   }
 
-  /** What is in, to go on from after an interrupt. */
+  /** All that is open, to go on from after an interrupt to the bit; this one goes on untouched. */
   snapshot(): Uint8Array {
-    return encodeFactors(this.end());
+    return takeState(this.#shape, (carrier) => this.#carry(carrier));
   }
 
-  /** Goes on from a snapshot. */
-  static restore(bytes: Uint8Array): FactorsGatherer {
-    const start = decodeFactors(bytes, 'the place where reading stopped');
-    return new FactorsGatherer(start, start);
+  /**
+   * Goes on from a snapshot.
+   *
+   * throws  as `bringState`
+   */
+  static restore(shape: FactorsShape, bytes: Uint8Array): FactorsGatherer {
+    const gatherer = new FactorsGatherer(shape);
+    bringState(gatherer.#shape, bytes, (carrier) => gatherer.#carry(carrier));
+    return gatherer;
   }
 
   /** What is in so far; more may follow. */
@@ -104,6 +109,15 @@ export class FactorsGatherer {
       ...books,
       waiting: this.#readings.state(),
     });
+  }
+
+  #carry(carrier: Carrier): void {
+    const fromTick = carrier.number(this.#fromTick ?? Number.NaN);
+    this.#fromTick = Number.isNaN(fromTick) ? null : fromTick;
+    this.#toTick = carrier.number(this.#toTick);
+    this.#ticks = carrier.number(this.#ticks);
+    this.#readings.carry(carrier);
+    this.#book.carry(carrier);
   }
 }
 

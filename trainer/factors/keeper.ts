@@ -9,7 +9,7 @@ import type { Series } from '../history/series.ts';
 import type { Earlier } from '../identify/earlier.ts';
 import { earlierOf } from './earlier.ts';
 import type { Factors } from './factors.ts';
-import { decodeFactors, encodeFactors } from './file.ts';
+import { encodeFactors } from './file.ts';
 import { FactorsGatherer } from './gather.ts';
 import { gridOf } from './moments.ts';
 import { shapeOf } from './site-shape.ts';
@@ -33,15 +33,13 @@ export class FactorsKeeper {
     this.#gatherer = start !== null || isAffordable(site) ? new FactorsGatherer(start ?? this.#shape(), start) : null;
   }
 
-  /** Takes in what is older; snapshots are whole factors. */
+  /** Takes in what is older. */
   sink(): OlderSink {
     return {
       take: (older) => this.#gatherer?.take(older),
-      snapshot: () => (this.#gatherer === null ? new Uint8Array(0) : encodeFactors(this.#gatherer.end())),
+      snapshot: () => this.#gatherer?.snapshot() ?? new Uint8Array(0),
       restore: (bytes) => {
-        if (bytes.length === 0) return;
-        const factors = decodeFactors(bytes, 'the file that keeps the place');
-        this.#gatherer = new FactorsGatherer(factors, factors);
+        if (this.#gatherer !== null) this.#gatherer = FactorsGatherer.restore(this.#shape(), bytes);
       },
     };
   }

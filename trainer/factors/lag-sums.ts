@@ -10,6 +10,7 @@
 import { MAX_HORIZON } from '@stillwell/protocol';
 import { createKernels, type Kernels } from '../kernels/kernels.ts';
 import { type LagGrid, type Panel, sharesOf } from './lag-grid.ts';
+import type { Carrier } from './open-state.ts';
 
 /** Spectra of one transform length, added up over blocks. */
 interface Spectra {
@@ -139,6 +140,16 @@ export class LagSums {
     kernels.release(mark);
   }
 
+  /** Takes all that is in along, or brings it back into sums of nothing. */
+  carry(carrier: Carrier): void {
+    this.#weight = carrier.number(this.#weight);
+    const count = carrier.number(this.#spectra.length);
+    for (let n = 0; n < count; n++) {
+      const size = carrier.number(this.#spectra[n]?.size ?? 0);
+      for (const pair of this.#spectraOfSize(size).pairs) carrier.fill(pair);
+    }
+  }
+
   /** Scales all that is in. */
   scale(factor: number): void {
     this.#weight *= factor;
@@ -243,6 +254,10 @@ export class LagSums {
   #spectraOf(window: number): Spectra {
     let size = longestTransform(this.#reach);
     while (size / SIZE_STEP >= Math.max(2 * window, SHORTEST)) size /= SIZE_STEP;
+    return this.#spectraOfSize(size);
+  }
+
+  #spectraOfSize(size: number): Spectra {
     const found = this.#spectra.find((spectra) => spectra.size === size);
     if (found !== undefined) return found;
     const pairs = Array.from({ length: this.#channels * this.#channels }, () => this.#kernels.alloc64(size + 2));

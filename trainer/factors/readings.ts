@@ -6,6 +6,7 @@
  */
 import type { Series } from '../history/series.ts';
 import type { FactorsShape, Waiting } from './factors.ts';
+import type { Carrier } from './open-state.ts';
 import type { RunBook } from './run-book.ts';
 import { WildWatch } from './wild.ts';
 
@@ -59,6 +60,18 @@ export class Readings {
       isExcluded: this.#isExcluded.slice(),
       watches: this.#watches.map((watch) => watch.state()),
     };
+  }
+
+  /** Takes all it holds along, or brings it back. */
+  carry(carrier: Carrier): void {
+    for (const list of [this.offsets, this.#last, this.#gap]) carrier.fill(list);
+    this.#waiting = this.#waiting.map((row) => carrier.list(row));
+    this.#isExcluded = carrier.flags(this.#isExcluded);
+    for (const watch of this.#watches) {
+      const state = watch.state();
+      carrier.fill(state);
+      watch.restore(state);
+    }
   }
 
   /** Ticks without any reading. */

@@ -7,7 +7,16 @@ import type { OpenRun, RunEnd, RunSums } from './factors.ts';
 import { FarLags, nearReach, nearSpread, type RunRows } from './far-lags.ts';
 import type { LagGrid } from './lag-grid.ts';
 import { LagSums, longestTransform } from './lag-sums.ts';
-import { addHeads, addLevels, type BlockOfRun, emptySums, type MutableSums, scaleSums } from './run-sums.ts';
+import type { Carrier } from './open-state.ts';
+import {
+  addHeads,
+  addLevels,
+  type BlockOfRun,
+  emptySums,
+  type MutableSums,
+  SUM_ARRAYS,
+  scaleSums,
+} from './run-sums.ts';
 import { addRungOut, type RungOut, ringOut, scaleRungOut } from './rung-out.ts';
 
 /** Sizes of the books. */
@@ -132,6 +141,44 @@ export class RunBook {
     };
     if (isKept) this.#far?.addRest(this.#rows(), -1);
     return books;
+  }
+
+  /** Takes all it holds along, or brings it back. */
+  carry(carrier: Carrier): void {
+    this.#lags.carry(carrier);
+    this.#far?.carry(carrier);
+    for (const key of SUM_ARRAYS) carrier.fill(this.#sums[key]);
+    this.#sums.count = carrier.number(this.#sums.count);
+    this.#weight = carrier.number(this.#weight);
+    this.#carryEnds(carrier);
+    this.#ticks = carrier.number(this.#ticks);
+    this.#filled = carrier.number(this.#filled);
+    this.#fresh = carrier.number(this.#fresh);
+    // Without a run nothing is filled, and what was there before does not matter.
+    const isThere = carrier.flags(this.#isThere ?? new Uint8Array(0));
+    this.#isThere = isThere.length === 0 ? null : isThere;
+    carrier.fill(this.#level);
+    carrier.fill(this.#first);
+    for (const row of [...this.#changes, ...this.#levels]) carrier.fill(row.subarray(0, this.#filled));
+  }
+
+  #carryEnds(carrier: Carrier): void {
+    const { channels, grid } = this.#shape;
+    const places = channels * grid.lags.length;
+    const count = carrier.number(this.#ends.length);
+    this.#ends = Array.from({ length: count }, (_, n) => {
+      const end = this.#ends[n];
+      return {
+        weight: carrier.number(end?.weight ?? 0),
+        isThere: carrier.flags(end?.isThere ?? new Uint8Array(0)),
+        level: carrier.list(end?.level ?? new Float64Array(0)),
+        changes: carrier.list(end?.changes ?? new Float64Array(0)),
+      };
+    });
+    if (carrier.number(this.#rungOut === null ? 0 : 1) === 0) return;
+    this.#rungOut ??= { levels: new Float64Array(channels * places), changes: new Float64Array(channels * places) };
+    carrier.fill(this.#rungOut.levels);
+    carrier.fill(this.#rungOut.changes);
   }
 
   #takeChannel(values: Float64Array, c: number, from: number, count: number): void {

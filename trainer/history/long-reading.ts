@@ -27,7 +27,9 @@ export interface ReadingSettings extends LongOptions {
   readonly belongs: Belongs | null;
 }
 
-const SAVE_EVERY_MS = 5000;
+/** A place is as large as what is learned so far: it is saved this seldom, and so seldom that it costs a twentieth of the time. */
+const SAVE_EVERY_MS = 30_000;
+const SAVE_SHARE = 20;
 const NEVER: Interrupt & { end(): void } = { isAsked: false, end: () => {} };
 
 /** Holds the parts while they are filled. */
@@ -90,11 +92,14 @@ export class LongReading {
     const own = belongs === null || this.#settings.interrupt !== undefined ? NEVER : watchSignals();
     const interrupt = this.#settings.interrupt ?? own;
     let savedMs = performance.now();
+    let waitMs = saveEveryMs;
     let isSaved = false;
     const save = (): void => {
       if (belongs === null || resumeFile === undefined) return;
+      const fromMs = performance.now();
       savePlace(resumeFile, belongs, placeOf(this, this.#sink));
       savedMs = performance.now();
+      if (saveEveryMs > 0) waitMs = Math.max(saveEveryMs, SAVE_SHARE * (savedMs - fromMs));
       isSaved = true;
     };
     try {
@@ -105,7 +110,7 @@ export class LongReading {
           save();
           throw new Interrupted();
         }
-        if (performance.now() - savedMs >= saveEveryMs) save();
+        if (performance.now() - savedMs >= waitMs) save();
       }
       // What took long to read is kept until the result is written.
       if (isSaved) save();

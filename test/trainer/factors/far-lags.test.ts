@@ -91,7 +91,7 @@ describe('far lags', () => {
   it.each([null, 40_000])('go on from a snapshot, half-life %s', (halfLifeTicks) => {
     const first = new FactorsGatherer({ ...far, halfLifeTicks });
     give(first, 0, 61_111);
-    const again = FactorsGatherer.restore(first.snapshot());
+    const again = FactorsGatherer.restore({ ...far, halfLifeTicks }, first.snapshot());
     for (const gatherer of [first, again]) give(gatherer, 61_111, ticks);
     const [a, b] = [first.end(), again.end()];
     expect(Buffer.compare(encodeFactors(a), encodeFactors(b))).toBe(0);

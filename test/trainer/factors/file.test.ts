@@ -49,7 +49,7 @@ describe('a factors file', () => {
   });
 
   it.each([
-    ['nothing', new Uint8Array(0), /not a factors file/],
+    ['nothing', new Uint8Array(0), /empty, expected a factors file/],
     [
       'another kind of file',
       new TextEncoder().encode('tick,flow,level,gate of some other site\n1,2,3\n4,5,6'),

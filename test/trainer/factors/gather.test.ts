@@ -63,18 +63,13 @@ describe('chunks', () => {
     expectAlike(momentsOf(gatherer.end()), momentsOf(whole.end()), TOLERANCE);
   });
 
-  it.each([5, 402, 705, 725, 1020, 1500])('go on after %i ticks from a snapshot or the file', (stop) => {
+  const stops = [5, 402, 705, 725, 1020, 1500];
+  it.each(stops)('go on after %i ticks from the file', (stop) => {
     const first = new FactorsGatherer(shape);
     first.take(seriesOf(gappy, 0, stop));
-    const bytes = first.snapshot();
-    const again = FactorsGatherer.restore(bytes);
-    const onward = new FactorsGatherer(shape, decodeFactors(bytes, 'a.swf'));
-    for (const gatherer of [again, onward]) gatherer.take(seriesOf(gappy, stop, ticks));
-    expectAlike(momentsOf(again.end()), momentsOf(whole.end()), TOLERANCE);
-    expectSameBytes(onward.end(), again.end());
-    // Going on from a snapshot is going on from where it was taken, to the bit.
-    first.take(seriesOf(gappy, stop, ticks));
-    expectSameBytes(first.end(), again.end());
+    const onward = new FactorsGatherer(shape, decodeFactors(encodeFactors(first.end()), 'a.swf'));
+    onward.take(seriesOf(gappy, stop, ticks));
+    expectAlike(momentsOf(onward.end()), momentsOf(whole.end()), TOLERANCE);
   });
 
   it('must not go back', () => {
