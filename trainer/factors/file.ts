@@ -139,7 +139,7 @@ export function readFactors(path: string): Factors {
  *
  * shapes  none
  * units   none
- * throws  TrainError 'factors' naming what differs: site, tick, or signals, their order and units
+ * throws  TrainError 'factors' naming what differs: site, tick, signals, their order, units and aggregates; or a horizon beyond them
  * source  none
  * cost    trivial
  */
@@ -156,11 +156,21 @@ export function checkBelongs(factors: Factors, site: Site, path: string): void {
   if (factors.site !== site.site) refuse('site', factors.site, site.site);
   if (factors.tickMs !== site.tickMs) refuse('a tick of', `${factors.tickMs} ms`, `${site.tickMs} ms`);
   const channels = channelsOf(site);
-  const names = channels.map(({ name }) => name);
-  if (factors.names.join() !== names.join()) refuse('channels', factors.names.join(', '), names.join(', '));
-  const units = channels.map(({ unit }) => unit);
-  if (factors.units.join() !== units.join()) refuse('units', factors.units.join(', '), units.join(', '));
+  if (factors.names.length !== channels.length) {
+    refuse('channels', factors.names.join(', '), channels.map(({ name }) => name).join(', '));
+  }
+  channels.forEach(({ name, unit }, c) => {
+    const [theirs, theirUnit] = [factors.names[c], factors.units[c]];
+    if (theirs !== name) {
+      const why = factors.names.includes(name) ? ' (the order differs: put it back as it was)' : '';
+      refuse(`a channel ${c + 1} called`, theirs, `${name}${why}`);
+    }
+    if (theirUnit !== unit) refuse(`${name} in`, theirUnit, unit);
+  });
   const schema = toHex(schemaHash(site));
   if (factors.schema !== schema)
     refuse('schema', factors.schema.slice(0, 12), `${schema.slice(0, 12)} (roles or aggregates differ)`);
+  if (site.horizon > factors.longestHorizon) {
+    refuse('horizons up to', `${factors.longestHorizon} ticks`, `at least ${site.horizon}`);
+  }
 }

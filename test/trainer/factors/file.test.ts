@@ -98,12 +98,13 @@ describe('belonging to a site', () => {
   it.each([
     ['another site', edited('mill-lane', 'mill-road'), /of site mill-road, expected mill-lane/],
     ['another tick', edited('tick: 1min', 'tick: 2min'), /of a tick of 120000 ms, expected 60000 ms/],
+    ['another signal', edited('name: inflow', 'name: outflow'), /of a channel 2 called outflow, expected inflow; give/],
+    ['another unit', edited('unit: mm/h', 'unit: mm'), /of rain in mm, expected mm\/h/],
     [
-      'another signal',
-      edited('name: inflow', 'name: outflow'),
-      /of channels level, outflow, rain, expected level, inflow, rain/,
+      'a shorter horizon',
+      edited('horizon: 2h', 'horizon: 50min'),
+      /of horizons up to 100 ticks, expected at least 120/,
     ],
-    ['another unit', edited('unit: mm/h', 'unit: mm'), /of units m, 1, mm, expected m, 1, mm\/h/],
     ['another aggregate', edited('aggregate: last', 'aggregate: mean'), /of schema .*roles or aggregates differ/],
   ])('is refused for %s', (_, text, message) => {
     const error = refusal(() => checkBelongs(factors(text), site, 'plant.swf'));
