@@ -51,4 +51,6 @@ export interface FitInput {
   readonly previous?: Uint8Array | null;
   /** What is known of the time before the series; the linear kind learns from it as well. */
   readonly earlier?: Earlier | null;
+  /** In its place: the same, still being worked out beside. */
+  readonly earlierToCome?: Promise<Earlier | null>;
 }

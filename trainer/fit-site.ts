@@ -3,17 +3,24 @@
  * worker of a fleet for each of its own. Writing is left to the caller: of a fleet, only the main thread writes, so that no
  * worker can be stopped halfway through it.
  */
+import { statSync } from 'node:fs';
 import { join } from 'node:path';
 import type { Site } from '@stillwell/protocol';
 import type { NewFile } from '@stillwell/runtime/files';
 import { candidateFiles } from './candidate-files.ts';
-import { FACTORS_FILE, FactorsKeeper } from './factors/keeper.ts';
+import { FACTORS_FILE, FactorsKeeper, factorsNotes } from './factors/keeper.ts';
 import type { FitOptions } from './fit-options.ts';
+import { findFiles } from './history/find-files.ts';
 import { type LongHistory, loadLong } from './history/long.ts';
 import type { OlderSink } from './history/older.ts';
 import { type FitResult, fit } from './pipeline.ts';
 import type { Progress } from './progress.ts';
+import { FactorsBeside } from './threads/factors-beside.ts';
+import { hasSecondCore, SecondThread } from './threads/second-thread.ts';
 import type { TimeSpan } from './time-option.ts';
+
+/** Bytes of the smallest files, columnar ones, that hold a long history of a few signals. */
+const LARGE_BYTES = 1 << 20;
 
 /** What is fitted, from where, to where. */
 export interface FitSiteJob {
@@ -30,6 +37,8 @@ export interface FitSiteJob {
   readonly resumeFile?: string;
   /** Told in a sentence when reading goes on from there, or why it cannot. */
   readonly say?: (sentence: string) => void;
+  /** 1: nothing is done on a second thread; absent: as the machine has cores, and never where this is a worker itself. */
+  readonly threads?: 1 | 2;
   readonly options: Omit<FitOptions, 'progress'>;
 }
 
@@ -58,25 +67,52 @@ export interface FittedSite {
  * throws  TrainError as loadLong and fit do
  */
 export async function fitSite(job: FitSiteJob, watch: FitSiteWatch): Promise<FittedSite> {
-  const { site, options, out, halfLifeTicks } = job;
-  let keeper = new FactorsKeeper(site, halfLifeTicks);
+  const { site, halfLifeTicks, threads } = job;
+  const mayHaveSecond = threads === undefined ? hasSecondCore() : threads > 1;
+  // Begun before it is known whether the history is long, where the files are large: so it is up when the first chunk comes.
+  let second = mayHaveSecond && isLarge(job) ? new SecondThread() : null;
+  let keeper: FactorsKeeper | FactorsBeside = new FactorsKeeper(site, halfLifeTicks);
   const begun = (): OlderSink => {
-    keeper = new FactorsKeeper(site, halfLifeTicks);
+    if (mayHaveSecond) second ??= new SecondThread();
+    keeper = second === null ? new FactorsKeeper(site, halfLifeTicks) : new FactorsBeside(second, site, halfLifeTicks);
     return keeper.sink();
   };
-  const loaded = await load(job, watch.reading, begun);
+  try {
+    const loaded = await load(job, watch.reading, begun);
+    if (loaded.older === null) await second?.end();
+    return await fitLoaded(job, watch, loaded, keeper);
+  } finally {
+    await second?.end();
+  }
+}
+
+async function fitLoaded(
+  { site, options, out }: FitSiteJob,
+  watch: FitSiteWatch,
+  loaded: LongHistory,
+  keeper: FactorsKeeper | FactorsBeside,
+): Promise<FittedSite> {
   const { series, survey, lattices, older } = loaded;
-  const earlier = older === null ? null : keeper.earlier();
+  const isBeside = older !== null && keeper instanceof FactorsBeside;
+  const earlier = isBeside ? { earlierToCome: keeper.earlier() } : { earlier: older && (await keeper.earlier()) };
+  const closing = isBeside ? keeper.close(series) : null;
   const result = await fit(
-    { series, site, survey, lattices, earlier },
+    { series, site, survey, lattices, ...earlier },
     { ...options, progress: (name) => watch.step(name) },
   ).finally(() => watch.end());
-  const factors = keeper.close(series);
-  const files = [
-    ...(await candidateFiles(out, site, survey, result)),
-    ...(factors === null ? [] : [{ path: join(out, FACTORS_FILE), bytes: factors }]),
-  ];
-  return { loaded, result, files, notes: keeper.notes(older !== null) };
+  const candidate = await candidateFiles(out, site, survey, result);
+  const factors = await (closing ?? keeper.close(series));
+  const files = [...candidate, ...(factors === null ? [] : [{ path: join(out, FACTORS_FILE), bytes: factors }])];
+  return { loaded, result, files, notes: factorsNotes(site, older !== null) };
+}
+
+/** Whether the files may well hold a long history. What cannot be found is refused by the reader, in its own words. */
+function isLarge({ history, site }: FitSiteJob): boolean {
+  try {
+    return findFiles(history, site.site).reduce((sum, path) => sum + statSync(path).size, 0) >= LARGE_BYTES;
+  } catch {
+    return false;
+  }
 }
 
 async function load(

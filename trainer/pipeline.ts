@@ -93,12 +93,14 @@ const MOST_RIVALS = 6;
  *
  * throws  TrainError 'options' or 'history' where the person can mend it, 'fit' where the numbers do not allow a model
  */
-export async function fit(input: FitInput, options: FitOptions): Promise<FitResult> {
+export async function fit(given: FitInput, options: FitOptions): Promise<FitResult> {
   checkOptions(options);
   const clock = startClock(options.progress);
-  const split = splitHistory(input.series, input.site, options);
+  const split = splitHistory(given.series, given.site, options);
   clock.lap('cleaning the history');
-  const prepared = prepareHistory(input.series, input.site, input.lattices, split, input.earlier ?? null);
+  const cleaned = prepareHistory(given.series, given.site, given.lattices, split);
+  const input = { ...given, earlier: await (given.earlierToCome ?? given.earlier ?? null) };
+  const prepared = { ...cleaned, earlier: input.earlier };
   clock.lap('learning');
   const taught = teach(prepared);
   clock.lap('choosing the kind and size, and calibrating');

@@ -37,17 +37,36 @@ export class FactorsKeeper {
   sink(): OlderSink {
     return {
       take: (older) => this.#gatherer?.take(older),
-      snapshot: () => this.#gatherer?.snapshot() ?? new Uint8Array(0),
-      restore: (bytes) => {
-        if (this.#gatherer !== null) this.#gatherer = FactorsGatherer.restore(this.#shape(), bytes);
-      },
+      snapshot: () => this.snapshot(),
+      restore: (bytes) => this.restore(bytes),
     };
+  }
+
+  /** All that is in, to go on from; no bytes where the site goes without. */
+  snapshot(): Uint8Array {
+    return this.#gatherer?.snapshot() ?? new Uint8Array(0);
+  }
+
+  /** Goes on from a snapshot. */
+  restore(bytes: Uint8Array): void {
+    if (this.#gatherer !== null) this.#gatherer = FactorsGatherer.restore(this.#shape(), bytes);
   }
 
   /** What is in so far, for learning; null where nothing is. */
   earlier(): Earlier | null {
+    const factors = this.#gathered();
+    return factors && earlierOf(factors);
+  }
+
+  /** The same as a file has it, for another thread. */
+  earlierBytes(): Uint8Array | null {
+    const factors = this.#gathered();
+    return factors && encodeFactors(factors);
+  }
+
+  #gathered(): Factors | null {
     const factors = this.#gatherer?.end();
-    return factors === undefined || factors.ticks === 0 ? null : earlierOf(factors);
+    return factors === undefined || factors.ticks === 0 ? null : factors;
   }
 
   /** Takes in the window and gives the file's bytes; null where the site goes without. */
@@ -57,19 +76,19 @@ export class FactorsKeeper {
     return encodeFactors(this.#gatherer.end());
   }
 
-  /** What a person should know where a history is longer than what was learned from. */
-  notes(isLong: boolean): string[] {
-    if (this.#gatherer !== null || !isLong) return [];
-    const count = this.#site.signals.length + this.#site.inputs.length;
-    return [
-      `${count} signals and inputs are too many for factors, so only the newest part of the history was learned from. ` +
-        'Dividing them among several site files mends this.',
-    ];
-  }
-
   #shape() {
     return shapeOf(this.#site, this.#halfLifeTicks);
   }
+}
+
+/** What a person should know where a history is longer than what was learned from. */
+export function factorsNotes(site: Site, isLong: boolean): string[] {
+  if (!isLong || isAffordable(site)) return [];
+  const count = site.signals.length + site.inputs.length;
+  return [
+    `${count} signals and inputs are too many for factors, so only the newest part of the history was learned from. ` +
+      'Dividing them among several site files mends this.',
+  ];
 }
 
 /** Whether a site is to have factors at all. */

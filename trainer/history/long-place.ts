@@ -46,7 +46,7 @@ interface SavedReading {
 const orNull = (value: number): number | null => (Number.isFinite(value) ? value : null);
 
 /** Puts a reading, as it stands between two steps, into a place. */
-export function placeOf({ merge, recent, older, times }: Reading, sink: OlderSink): Place {
+export async function placeOf({ merge, recent, older, times }: Reading, sink: OlderSink): Promise<Place> {
   const lists: Uint8Array[] = [];
   const put = (numbers: Float64Array): number =>
     lists.push(new Uint8Array(numbers.buffer, numbers.byteOffset, numbers.byteLength)) - 1;
@@ -65,7 +65,7 @@ export function placeOf({ merge, recent, older, times }: Reading, sink: OlderSin
       values: values.map((list) => put(list.view(head))),
     })),
     older: older.state(),
-    sink: lists.push(sink.snapshot()) - 1,
+    sink: lists.push(await sink.snapshot()) - 1,
     times: times.state(),
   };
   return { data, lists };
@@ -92,12 +92,12 @@ function savedFile({ stream, taken }: OpenFile, put: (numbers: Float64Array) => 
  *
  * open  opens a file where it stood
  */
-export function takeOut(
+export async function takeOut(
   { data, lists }: Place,
   { merge, recent, older, times }: Reading,
   sink: OlderSink,
   open: (path: string, state: StreamState | null) => ReadingStream,
-): void {
+): Promise<void> {
   const saved = data as SavedReading;
   const get = (number: number): Float64Array => new Float64Array((lists[number] as Uint8Array).buffer as ArrayBuffer);
   times.restore(saved.times);
@@ -120,7 +120,7 @@ export function takeOut(
   }
   recent.restore(saved.recent);
   older.restore(saved.older);
-  sink.restore(lists[saved.sink] as Uint8Array);
+  await sink.restore(lists[saved.sink] as Uint8Array);
 }
 
 function waitingOf({ path, firstMs }: { readonly path: string; readonly firstMs: number | null }): WaitingFile {

@@ -72,7 +72,7 @@ export class LongReading {
   /** Begins, anew or from a place. */
   async begin(place: Place | null): Promise<void> {
     if (place !== null) {
-      takeOut(place, this, this.#sink, (path, state) => this.#open(path, state, null));
+      await takeOut(place, this, this.#sink, (path, state) => this.#open(path, state, null));
       this.#settings.say?.(`Going on from where reading was interrupted, after ${this.merge.rows} rows.`);
       return;
     }
@@ -94,26 +94,26 @@ export class LongReading {
     let savedMs = performance.now();
     let waitMs = saveEveryMs;
     let isSaved = false;
-    const save = (): void => {
+    const save = async (): Promise<void> => {
       if (belongs === null || resumeFile === undefined) return;
       const fromMs = performance.now();
-      savePlace(resumeFile, belongs, placeOf(this, this.#sink));
+      savePlace(resumeFile, belongs, await placeOf(this, this.#sink));
       savedMs = performance.now();
       if (saveEveryMs > 0) waitMs = Math.max(saveEveryMs, SAVE_SHARE * (savedMs - fromMs));
       isSaved = true;
     };
     try {
       while (await this.merge.step(this.recent)) {
-        this.older.handOn(this.recent, false);
+        await this.older.handOn(this.recent, false);
         this.#tell();
         if (interrupt.isAsked) {
-          save();
+          await save();
           throw new Interrupted();
         }
-        if (performance.now() - savedMs >= waitMs) save();
+        if (performance.now() - savedMs >= waitMs) await save();
       }
       // What took long to read is kept until the result is written.
-      if (isSaved) save();
+      if (isSaved) await save();
     } finally {
       own.end();
       this.#settings.progress?.end();
@@ -122,7 +122,8 @@ export class LongReading {
     const names = this.merge.finished.map(({ file }) => file).join(', ');
     checkStretch(names, this.merge.rows, firstTick, endTick - firstTick, this.#site.tickMs);
     refuseUnseen(this.#site, (c) => this.recent.holds(c), this.merge.finished);
-    this.older.handOn(this.recent, true);
+    await this.older.handOn(this.recent, true);
+    this.#sink.end?.();
   }
 
   /** A file that will be sorted may hold earlier times than its first row has: it is opened at once. */

@@ -16,12 +16,17 @@ import { type Group, mergeReadings, type RecentReadings } from './recent.ts';
 import type { Series } from './series.ts';
 import { ThinnedSample, type ThinnedState } from './thinned-sample.ts';
 
-/** Who learns from what is older: chunks of consecutive ticks, raw units, NaN missing. */
+/**
+ * Who learns from what is older: chunks of consecutive ticks, raw units, NaN missing. A chunk is given away for good, so that
+ * it can go to another thread; a promise is waited for before the next is laid.
+ */
 export interface OlderSink {
-  take(older: Series): void;
+  take(older: Series): void | Promise<void>;
   /** All it holds, so that a later run goes on from there. */
-  snapshot(): Uint8Array;
-  restore(bytes: Uint8Array): void;
+  snapshot(): Uint8Array | Promise<Uint8Array>;
+  restore(bytes: Uint8Array): void | Promise<void>;
+  /** Told that nothing follows. */
+  end?(): void;
 }
 
 /** What was older than the window, for notes and provenance. */
@@ -87,11 +92,12 @@ export class OlderTicks {
   }
 
   /** Hands on every chunk that is due; at the end also the rest before the window. */
-  handOn(recent: RecentReadings, isLast: boolean): void {
+  async handOn(recent: RecentReadings, isLast: boolean): Promise<void> {
     for (let due = recent.due(isLast); due !== null; due = recent.due(isLast)) {
       const channels = channelsBefore(recent, due.toTick, this.#channels);
-      this.#take(channels, this.#ahead(recent, due.toTick, channels), due.fromTick, due.toTick);
+      const series = this.#lay(channels, this.#ahead(recent, due.toTick, channels), due.fromTick, due.toTick);
       recent.handOn(due.toTick);
+      await this.#sink.take(series);
     }
   }
 
@@ -103,12 +109,12 @@ export class OlderTicks {
     return channelsBefore(recent, toTick + Math.ceil(furthest / this.#site.tickMs), this.#channels);
   }
 
-  #take(
+  #lay(
     channels: readonly ChannelReadings[],
     ahead: readonly ChannelReadings[],
     fromTick: number,
     toTick: number,
-  ): void {
+  ): Series {
     this.#look(channels);
     const history = historyOf(channels, this.#site);
     const { seen, mark } = believe(history, this.#site, this.#remembered, historyOf(ahead, this.#site));
@@ -125,11 +131,11 @@ export class OlderTicks {
     const names = this.#channels.map(({ name }) => name);
     const laid = { tickMs, firstTick: fromTick, ticks: span.ticks, names, values, digest: this.#digest };
     const series = mark({ ...laid, signalCount: history.signalCount });
-    this.#sink.take(series);
     this.#count(series);
     this.#fromTick ??= fromTick;
     this.#toTick = toTick;
     this.#chunks++;
+    return series;
   }
 
   /** Looks at the readings of the next chunk, before they are held against what is plausible. */

@@ -1,0 +1,40 @@
+/** What the main thread of a fit may ask of its second thread, and what comes back: plain values that travel as they are. */
+import type { Site } from '@stillwell/protocol';
+import type { Series } from '../history/series.ts';
+
+/** By name: what goes with it, and the answer. Asked in this order: later ones use what earlier ones left. */
+export interface Requests {
+  /** Factors of a site from nothing; those begun before are forgotten. */
+  begin: { given: { readonly site: Site; readonly halfLifeTicks: number | null }; got: null };
+  /** A chunk of what is older. */
+  take: { given: Series; got: null };
+  /** All that is in, to go on from. */
+  snapshot: { given: null; got: Uint8Array };
+  restore: { given: Uint8Array; got: null };
+  /** What is in as a file has it; null where nothing is. */
+  earlier: { given: null; got: Uint8Array | null };
+  /** The window, which goes in last: the finished file; null where the site goes without. */
+  close: { given: Series; got: Uint8Array | null };
+}
+
+/** One request under way. */
+export interface Asked {
+  readonly id: number;
+  readonly what: keyof Requests;
+  readonly given: unknown;
+}
+
+/** Its answer, or why there is none. */
+export type Answered =
+  | { readonly id: number; readonly got: unknown }
+  | { readonly id: number; readonly problem: Problem };
+
+/** An error as it travels: a class would not survive. */
+export interface Problem {
+  readonly name: string;
+  readonly message: string;
+  readonly stack: string | undefined;
+  /** Of a TrainError; null for others, which are mistakes of ours. */
+  readonly code: string | null;
+  readonly details: Readonly<Record<string, unknown>>;
+}

@@ -1,0 +1,60 @@
+/**
+ * The second thread of a fit: answers one request after the other, in the order they came. It keeps what is light to load,
+ * since it starts while the first file is being opened.
+ */
+import { parentPort } from 'node:worker_threads';
+import { TrainError } from '../errors.ts';
+import { FactorsKeeper } from '../factors/keeper.ts';
+import type { Answered, Asked, Problem, Requests } from './requests.ts';
+
+type Answers = { readonly [What in keyof Requests]: (given: Requests[What]['given']) => Requests[What]['got'] };
+
+let keeper: FactorsKeeper | null = null;
+
+const ANSWERS: Answers = {
+  begin: ({ site, halfLifeTicks }) => {
+    keeper = new FactorsKeeper(site, halfLifeTicks);
+    return null;
+  },
+  take: (older) => {
+    begun().sink().take(older);
+    return null;
+  },
+  snapshot: () => begun().snapshot(),
+  restore: (bytes) => {
+    begun().restore(bytes);
+    return null;
+  },
+  earlier: () => begun().earlierBytes(),
+  close: (window) => begun().close(window),
+};
+
+function begun(): FactorsKeeper {
+  if (keeper === null) throw new Error('The second thread was asked for factors before they were begun.');
+  return keeper;
+}
+
+function answer({ id, what, given }: Asked): Answered {
+  try {
+    return { id, got: (ANSWERS[what] as (given: unknown) => unknown)(given) };
+  } catch (error) {
+    return { id, problem: problemOf(error as Error) };
+  }
+}
+
+function problemOf(error: Error): Problem {
+  const { name, message, stack } = error;
+  const isOurs = error instanceof TrainError;
+  return { name, message, stack, code: isOurs ? error.code : null, details: isOurs ? plain(error.details) : {} };
+}
+
+/** Details that can travel. */
+function plain(details: Readonly<Record<string, unknown>>): Readonly<Record<string, unknown>> {
+  return JSON.parse(JSON.stringify(details)) as Record<string, unknown>;
+}
+
+parentPort?.on('message', (asked: Asked) => {
+  parentPort?.postMessage(answer(asked));
+  // The last request: the thread ends by itself, since the main one is busy and would hold its memory for long.
+  if (asked.what === 'close') parentPort?.close();
+});
