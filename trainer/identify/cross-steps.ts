@@ -3,6 +3,7 @@
  * block's two ends, then carried through the features' own recursion φ(t) = a φ(t-1) + drive Δ(t). Cross products lie
  * (nc × p), entry i·p + f for the change of channel i and feature f.
  */
+import { createKernels, type Kernels } from '../kernels/kernels.ts';
 import type { Block } from './moments.ts';
 import type { Poles } from './poles.ts';
 
@@ -67,9 +68,6 @@ export function dotShifted(a: Float64Array, b: Float64Array, from: number, to: n
   return s0 + s1 + (s2 + s3);
 }
 
-/** Ticks that are taken through all shifts while they lie in the nearest cache; a multiple of four. */
-const CHUNK = 2048;
-
 /**
  * The same for many shifts, out[n] that of shift first + n; each to the bit what `dotShifted` gives.
  *
@@ -77,7 +75,7 @@ const CHUNK = 2048;
  * units   any
  * throws  nothing
  * source  definition
- * cost    O((to - from) count), two shifts at a time
+ * cost    O((to - from) count), in lanes
  */
 export function dotsShifted(
   a: Float64Array,
@@ -88,58 +86,49 @@ export function dotsShifted(
   out: Float64Array,
 ): void {
   const count = out.length;
-  const paired = count - (count % 2);
   const whole = to - ((to - from) % 4);
-  const sums = new Float64Array(4 * paired);
-  for (let start = from; start < whole; start += CHUNK) {
-    const end = Math.min(whole, start + CHUNK);
-    for (let n = 0; n < paired; n += 2) addTwoShifts(a, b, start, end, first + n, sums, 4 * n);
+  lanes ??= makeLanes();
+  const { kernels, near, far, sums } = lanes;
+  for (let n = 0; n < count; n += SHIFTS) {
+    const shifts = Math.min(SHIFTS, count - n);
+    sums.fill(0, 0, 4 * shifts);
+    for (let start = from; start < whole; start += CHUNK) {
+      const end = Math.min(whole, start + CHUNK);
+      near.set(a.subarray(start, end));
+      far.set(b.subarray(start + first + n, end + first + n + shifts - 1));
+      kernels.shiftedDotsAdd(sums, near, far, end - start, shifts);
+    }
+    for (let k = 0; k < shifts; k++) {
+      let sum = sums[4 * k];
+      for (let t = whole; t < to; t++) sum += a[t] * b[t + first + n + k];
+      out[n + k] = sum + sums[4 * k + 1] + (sums[4 * k + 2] + sums[4 * k + 3]);
+    }
   }
-  for (let n = 0; n < paired; n++) {
-    let sum = sums[4 * n];
-    for (let t = whole; t < to; t++) sum += a[t] * b[t + first + n];
-    out[n] = sum + sums[4 * n + 1] + (sums[4 * n + 2] + sums[4 * n + 3]);
-  }
-  if (paired < count) out[paired] = dotShifted(a, b, from, to, first + paired);
 }
 
-/** Adds a whole number of fours to the running sums of a shift and of the next one. */
-function addTwoShifts(
-  a: Float64Array,
-  b: Float64Array,
-  from: number,
-  to: number,
-  shift: number,
-  sums: Float64Array,
-  at: number,
-): void {
-  let s0 = sums[at];
-  let s1 = sums[at + 1];
-  let s2 = sums[at + 2];
-  let s3 = sums[at + 3];
-  let r0 = sums[at + 4];
-  let r1 = sums[at + 5];
-  let r2 = sums[at + 6];
-  let r3 = sums[at + 7];
-  for (let t = from; t < to; t += 4) {
-    const u = t + shift;
-    const a0 = a[t];
-    const a1 = a[t + 1];
-    const a2 = a[t + 2];
-    const a3 = a[t + 3];
-    const b1 = b[u + 1];
-    const b2 = b[u + 2];
-    const b3 = b[u + 3];
-    s0 += a0 * b[u];
-    s1 += a1 * b1;
-    s2 += a2 * b2;
-    s3 += a3 * b3;
-    r0 += a0 * b1;
-    r1 += a1 * b2;
-    r2 += a2 * b3;
-    r3 += a3 * b[u + 4];
-  }
-  sums.set([s0, s1, s2, s3, r0, r1, r2, r3], at);
+/** Ticks that are taken through all shifts while they lie in the nearest cache; a multiple of four. */
+const CHUNK = 1536;
+/** Shifts taken together, so that their sums stay near too. */
+const SHIFTS = 256;
+
+interface Lanes {
+  readonly kernels: Kernels;
+  readonly near: Float64Array;
+  readonly far: Float64Array;
+  readonly sums: Float64Array;
+}
+
+/** Scratch of `dotsShifted`, made at its first use: nothing in it outlives a call. */
+let lanes: Lanes | null = null;
+
+function makeLanes(): Lanes {
+  const kernels = createKernels(8 * (2 * CHUNK + 5 * SHIFTS) + 256);
+  return {
+    kernels,
+    near: kernels.alloc64(CHUNK),
+    far: kernels.alloc64(CHUNK + SHIFTS),
+    sums: kernels.alloc64(4 * SHIFTS),
+  };
 }
 
 /**

@@ -97,10 +97,34 @@ export interface VectorLoops {
   hadamard32(x: Pointer, n: number): void;
 }
 
+/** Products at many distances and features carried forward, in the order of plain loops over time. */
+export interface ShiftLoops {
+  shiftedDots64(sums: Pointer, a: Pointer, b: Pointer, n: number, shifts: number): void;
+  carryForward64(
+    rows: Pointer,
+    rowStride: number,
+    from: Pointer,
+    re: Pointer,
+    im: Pointer,
+    own: Pointer,
+    real: number,
+    n: number,
+    changes: Pointer,
+    steps: number,
+  ): void;
+  orderedProducts64(c: Pointer, a: Pointer, b: Pointer, m: number, n: number, steps: number): void;
+}
+
 /** Small symmetric eigenproblems; 0, or 1 where a value did not settle. */
 export interface SymmetricLoops {
   diagonalise64(z: Pointer, d: Pointer, work: Pointer, n: number): number;
 }
 
 /** All of them. */
-export type Core = ProductLoops & TriangularLoops & FourierLoops & VectorLoops & ThinLoops & SymmetricLoops;
+export type Core = ProductLoops &
+  TriangularLoops &
+  FourierLoops &
+  VectorLoops &
+  ThinLoops &
+  SymmetricLoops &
+  ShiftLoops;

@@ -65,4 +65,25 @@ export interface Kernels {
   axpy(y: Float64Array, factor: number, x: Float64Array, n: number): void;
   /** x *= factor. */
   scale(x: Float64Array, factor: number, n: number): void;
+  /**
+   * Adds Σ a(t) b(t + k), k = 0 … shifts - 1, over n ticks, a whole number of fours: sums (shifts × 4) hold every fourth
+   * product each, in the order of time.
+   */
+  shiftedDotsAdd(sums: Float64Array, a: Float64Array, b: Float64Array, n: number, shifts: number): void;
+  /**
+   * n features moved forward over `steps` ticks from `from`, a row (of `stride`) a tick: f = re f + own c of the first `real`
+   * ones, f = re f + im g + own c and g = re g + im f + own c of the pairs after, c the change of the tick.
+   */
+  carryForward(
+    rows: Float64Array,
+    stride: number,
+    from: Float64Array,
+    factors: { readonly re: Float64Array; readonly im: Float64Array; readonly own: Float64Array },
+    real: number,
+    n: number,
+    changes: Float64Array,
+    steps: number,
+  ): void;
+  /** C += A'B as `productAdd`, every sum in the order of the rows. */
+  orderedProductAdd(c: Float64Array, a: Float64Array, b: Float64Array, rows: number, m: number, n: number): void;
 }

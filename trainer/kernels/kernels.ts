@@ -10,6 +10,7 @@ import { hasSimd, loadCore } from './load.ts';
 import { MemoryKernels, OWN_BYTES } from './memory-kernels.ts';
 import { scalarFourier } from './scalar-fourier.ts';
 import { scalarProducts } from './scalar-products.ts';
+import { scalarShifts } from './scalar-shifts.ts';
 import { scalarSymmetric } from './scalar-symmetric.ts';
 import { scalarTriangular } from './scalar-triangular.ts';
 import { scalarVectors } from './scalar-vectors.ts';
@@ -56,5 +57,6 @@ function scalarCore(buffer: ArrayBuffer): Core {
     ...scalarFourier(buffer),
     ...scalarVectors(buffer),
     ...scalarSymmetric(buffer),
+    ...scalarShifts(buffer),
   };
 }

@@ -160,6 +160,35 @@ export class MemoryKernels implements Kernels {
     this.#core.scale64(this.#at(x, n), factor, n);
   }
 
+  shiftedDotsAdd(sums: Float64Array, a: Float64Array, b: Float64Array, n: number, shifts: number): void {
+    if (n % 4 !== 0) throw new RangeError(`Shifted products over ${n} ticks: expected a whole number of fours.`);
+    const reach = shifts > 0 ? n + shifts - 1 : 0;
+    this.#core.shiftedDots64(this.#at(sums, 4 * shifts), this.#at(a, n), this.#at(b, reach), n, shifts);
+  }
+
+  carryForward(
+    rows: Float64Array,
+    stride: number,
+    from: Float64Array,
+    factors: { readonly re: Float64Array; readonly im: Float64Array; readonly own: Float64Array },
+    real: number,
+    n: number,
+    changes: Float64Array,
+    steps: number,
+  ): void {
+    if (real > n || (n - real) % 2 !== 0) {
+      throw new RangeError(`${n} features, ${real} of them real: expected pairs after the real ones.`);
+    }
+    const [re, im, own] = [factors.re, factors.im, factors.own].map((each) => this.#at(each, n));
+    const to = this.#at(rows, steps > 0 ? (steps - 1) * stride + n : 0);
+    const first = this.#at(from, n);
+    this.#core.carryForward64(to, stride, first, re, im, own, real, n, this.#at(changes, steps), steps);
+  }
+
+  orderedProductAdd(c: Float64Array, a: Float64Array, b: Float64Array, rows: number, m: number, n: number): void {
+    this.#core.orderedProducts64(this.#at(c, m * n), this.#at(a, rows * m), this.#at(b, rows * n), m, n, rows);
+  }
+
   #add(...product: ProductArguments): void {
     addProduct(this.#core, this.#scratch, ...product);
   }

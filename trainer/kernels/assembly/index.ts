@@ -2,6 +2,7 @@
 export * from './fourier';
 export * from './hadamard';
 export * from './products';
+export * from './shifts';
 export * from './symmetric';
 export * from './triangular';
 export * from './vectors';
