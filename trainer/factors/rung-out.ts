@@ -21,18 +21,25 @@ export interface RungOut {
  * units   raw
  * throws  nothing
  * source  definition
- * cost    O(nc² places)
+ * cost    O(nc² places), of a short run those it reaches
  */
 export function ringOut(into: RungOut | null, { weight, isThere, level, changes }: RunEnd): RungOut {
   const nc = level.length;
   const all = changes.length;
   const sums = into ?? { levels: new Float64Array(nc * all), changes: new Float64Array(nc * all) };
-  for (let c = 0; c < nc; c++) {
-    if (isThere[c] === 0) continue;
-    for (let k = 0; k < all; k++) {
-      const value = weight * changes[k];
-      sums.levels[c * all + k] += level[c] * value;
-      sums.changes[c * all + k] += value;
+  const places = all / nc;
+  for (let d = 0; d < nc; d++) {
+    const from = d * places;
+    // Of a run shorter than the reach the furthest places hold nothing.
+    let to = from + places;
+    while (to > from && changes[to - 1] === 0) to--;
+    for (let c = 0; c < nc; c++) {
+      if (isThere[c] === 0) continue;
+      for (let k = from; k < to; k++) {
+        const value = weight * changes[k];
+        sums.levels[c * all + k] += level[c] * value;
+        sums.changes[c * all + k] += value;
+      }
     }
   }
   return sums;
