@@ -11,7 +11,7 @@ import type { Earlier } from '../identify/earlier.ts';
 import type { SecondThread } from './second-thread.ts';
 
 /** Bytes of chunks that may wait to be taken in; with channels by the dozen each is some megabytes. */
-const MOST_WAITING_BYTES = 16 << 20;
+const MOST_WAITING_BYTES = 4 << 20;
 const LEAST_WAITING = 2;
 
 /** Begins anew with each. */
