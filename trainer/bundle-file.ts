@@ -63,9 +63,9 @@ export function openBundleFile(path: string): OpenDocument & { readonly envelope
   }
 }
 
-/** Bytes that are no MessagePack at all are another file, or a candidate that was damaged: only its reader can tell. */
+/** Bytes that are no MessagePack, or far too many, are another file or a damaged candidate: only its reader can tell. */
 function refusalText(path: string, cause: Error): string {
-  if (cause instanceof ProtocolError && ['scan', 'decode'].includes(cause.code)) {
+  if (cause instanceof ProtocolError && ['scan', 'decode', 'size'].includes(cause.code)) {
     return (
       `${path}: expected a bundle (.swb) or a candidate (.swc), got bytes that are neither (${cause.message}); ` +
       'check that it is the right file, get it again, or fit again'
