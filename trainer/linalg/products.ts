@@ -1,8 +1,9 @@
 /**
  * Dense row-major products on typed arrays. Four rows of the right factor are folded into two rows of the result at a time:
- * what is read serves twice, and every sum keeps the order of the textbook triple loop, several times as quickly. Not for large matrices: no
- * tiling, since the trainer's matrices have a few hundred rows.
+ * what is read serves twice, and every sum keeps the order of the textbook triple loop, several times as quickly. Larger
+ * products go through ordered-product.ts, to the same bits.
  */
+import { addInLanes } from './ordered-product.ts';
 
 /**
  * The product A B.
@@ -15,6 +16,7 @@
  */
 export function multiply(a: Float64Array, b: Float64Array, n: number, k: number, m: number): Float64Array {
   const out = new Float64Array(n * m);
+  if (addInLanes(out, a, b, n, k, m, false)) return out;
   for (let i = 0; i < n; i += 2) {
     const to = out.subarray(i * m, i * m + m);
     const next = i + 1 < n ? out.subarray(i * m + m, i * m + 2 * m) : null;
@@ -64,6 +66,7 @@ export function addTransposed(
   k: number,
   m: number,
 ): void {
+  if (addInLanes(out, a, b, n, k, m, true)) return;
   let l = 0;
   for (; l + 3 < k; l += 4) {
     for (let i = 0; i < n; i += 2) {
