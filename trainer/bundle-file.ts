@@ -97,6 +97,18 @@ export function probeDifference({ bundle, model }: Pick<OpenDocument, 'bundle' |
   return `the probe's outputs differ from the stated ones (SHA-256 ${hex(digest).slice(0, 16)}…, got ${hex(got).slice(0, 16)}…)${where}`;
 }
 
+/**
+ * As openBundleFile, and its probe must hold: for a model whose forecasts are to be scored.
+ *
+ * throws  as openBundleFile; TrainError 'bundle' where the probe comes out otherwise
+ */
+export function openProvenFile(path: string): ReturnType<typeof openBundleFile> {
+  const opened = openBundleFile(path);
+  const difference = probeDifference(opened);
+  if (difference === null) return opened;
+  throw new TrainError('bundle', `${path}: ${difference}; the file is damaged, get it again or fit again`);
+}
+
 /** Bytes as lower-case hex. */
 export function hex(bytes: Uint8Array): string {
   return Buffer.from(bytes.buffer, bytes.byteOffset, bytes.byteLength).toString('hex');

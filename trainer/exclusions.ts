@@ -215,11 +215,15 @@ function labelOf(index: number | undefined, { firstTick, tickMs }: Series): numb
 }
 
 /** What was left out and why, in a sentence an entry; for warnings, reports and the terminal. */
-export function excludedNotes({ excluded, ticks, tickMs }: Series): string[] {
+export function excludedNotes({ excluded, ticks, tickMs }: Series, hasEarlier = false): string[] {
   return (excluded?.entries ?? []).map(({ reason, signals, stretches, ticks: left, fromMs, toMs }) => {
     const who = signals === null ? 'The whole plant' : signals.join(', ');
-    if (fromMs === null || toMs === null)
-      return `${who}: nothing excluded for "${reason}", which lies outside this history.`;
+    if (fromMs === null || toMs === null) {
+      const place = hasEarlier
+        ? 'the newest part of this history; what is older is left out where it lies there'
+        : 'this history';
+      return `${who}: nothing excluded for "${reason}", which lies outside ${place}.`;
+    }
     const where = `${stretches === 1 ? '' : `${stretches} times, `}${iso(fromMs)} to ${iso(toMs)}`;
     return `${who}: ${lengthOf(left * tickMs)} (${percent(left / ticks)}) excluded from learning, bounds and judging for "${reason}", ${where}.`;
   });

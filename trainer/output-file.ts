@@ -1,5 +1,7 @@
 /** Files that commands write: whole or not at all, and a refusal in one line where that fails. */
-import { type NewFile, replaceFiles } from '@stillwell/runtime/files';
+import { existsSync, readdirSync, rmdirSync, unlinkSync, writeFileSync } from 'node:fs';
+import { join } from 'node:path';
+import { makeFolder, type NewFile, replaceFiles } from '@stillwell/runtime/files';
 import { TrainError } from './errors.ts';
 
 /** What the system's codes mean to a person. */
@@ -35,6 +37,31 @@ export function writeOutputs(files: readonly NewFile[]): void {
     replaceFiles(files);
   } catch (cause) {
     throw unwritable(names, cause as Error);
+  }
+}
+
+/**
+ * Makes sure that files can be written to a folder before long work begins whose result would stand there; a folder made for
+ * it goes away again where nothing came of the work.
+ *
+ * throws  TrainError 'file' with the system's reason; whatever the work throws
+ */
+export async function withRoom<T>(folder: string, work: () => Promise<T>): Promise<T> {
+  if (folder === '') throw new TrainError('file', '--out: expected a path, got an empty one');
+  const isNew = !existsSync(folder);
+  const probe = join(folder, `room-${process.pid}.part`);
+  try {
+    makeFolder(folder);
+    writeFileSync(probe, '');
+    unlinkSync(probe);
+  } catch (cause) {
+    throw unwritable(folder, cause as Error);
+  }
+  try {
+    return await work();
+  } catch (error) {
+    if (isNew && readdirSync(folder).length === 0) rmdirSync(folder);
+    throw error;
   }
 }
 

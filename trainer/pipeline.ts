@@ -98,7 +98,8 @@ export async function fit(given: FitInput, options: FitOptions): Promise<FitResu
   const clock = startClock(options.progress);
   const split = splitHistory(given.series, given.site, options);
   clock.lap('cleaning the history');
-  const cleaned = prepareHistory(given.series, given.site, given.lattices, split);
+  const hasEarlier = given.earlierToCome !== undefined || (given.earlier ?? null) !== null;
+  const cleaned = prepareHistory(given.series, given.site, given.lattices, split, hasEarlier);
   const input = { ...given, earlier: await (given.earlierToCome ?? given.earlier ?? null) };
   const prepared = { ...cleaned, earlier: input.earlier };
   clock.lap('learning');

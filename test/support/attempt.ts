@@ -17,7 +17,7 @@ export function attemptOf(series: Series, horizon: number, step: number): Attemp
   const site = hourlySite(names.slice(0, series.signalCount), horizon, names.slice(series.signalCount));
   const split = splitHistory(series, site, FIT_DEFAULTS);
   const lattices = names.map(() => ({ step, offset: 0 }));
-  const prepared = prepareHistory(series, site, lattices, split);
+  const prepared = { ...prepareHistory(series, site, lattices, split), earlier: null };
   const taught = teach(prepared);
   return {
     series,

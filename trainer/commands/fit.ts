@@ -7,7 +7,7 @@ import { TrainError } from '../errors.ts';
 import { type FitSiteJob, type FitSiteWatch, fitSite } from '../fit-site.ts';
 import { fitSummary } from '../fit-summary.ts';
 import { halfLifeOption, halfLifeTicks, kindOption, reason, several, share, wholeNumber } from '../option-values.ts';
-import { writeOutputs } from '../output-file.ts';
+import { withRoom, writeOutputs } from '../output-file.ts';
 import { FIT_DEFAULTS, type FitOptions } from '../pipeline.ts';
 import { createProgress, type Progress } from '../progress.ts';
 import { readSite } from '../site-file.ts';
@@ -101,8 +101,11 @@ async function run(options: FitCommandOptions): Promise<void> {
   const resumeFile = join(options.out, RESUME_FILE);
   const say = (sentence: string): void => void process.stderr.write(`${sentence}\n`);
   const job = { ...jobOf(site, history, options.out, options), resumeFile, say };
-  const { loaded, result, files, notes } = await fitSite(job, stepsShown());
-  writeOutputs(files);
+  const { loaded, result, files, notes } = await withRoom(options.out, async () => {
+    const fitted = await fitSite(job, stepsShown());
+    writeOutputs(fitted.files);
+    return fitted;
+  });
   loaded.done();
   process.stdout.write(
     options.json

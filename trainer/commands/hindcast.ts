@@ -2,7 +2,7 @@
 import type { Bundle } from '@stillwell/protocol';
 import { ADVISORY, describeSchemaDifference } from '@stillwell/protocol';
 import { Command } from 'commander';
-import { openBundleFile } from '../bundle-file.ts';
+import { openProvenFile } from '../bundle-file.ts';
 import { TrainError } from '../errors.ts';
 import { believe, excludedNotes } from '../exclusions.ts';
 import { lookLimits, olderNote, readNewest } from '../history/long.ts';
@@ -62,7 +62,7 @@ export function hindcastCommand(): Command {
 
 async function run(options: HindcastOptions): Promise<void> {
   const site = readSite(options.site);
-  const { bundle, model, digest } = openBundleFile(options.bundle);
+  const { bundle, model, digest } = openProvenFile(options.bundle);
   const difference = describeSchemaDifference(bundle, site);
   if (difference !== null) {
     throw new TrainError(

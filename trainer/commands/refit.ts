@@ -2,7 +2,7 @@
 import { join } from 'node:path';
 import { ADVISORY, type Site } from '@stillwell/protocol';
 import { Command } from 'commander';
-import { openBundleFile } from '../bundle-file.ts';
+import { openProvenFile } from '../bundle-file.ts';
 import { CANDIDATE_FILES, candidateFacts, candidateFiles, writtenText } from '../candidate-files.ts';
 import { TrainError } from '../errors.ts';
 import type { Factors } from '../factors/factors.ts';
@@ -11,7 +11,7 @@ import type { FitOptions } from '../fit-options.ts';
 import { fitSummary } from '../fit-summary.ts';
 import type { History } from '../history/history.ts';
 import { halfLifeOption, halfLifeTicks, kindOption, reason, several, share, wholeNumber } from '../option-values.ts';
-import { writeOutputs } from '../output-file.ts';
+import { withRoom, writeOutputs } from '../output-file.ts';
 import { createProgress } from '../progress.ts';
 import type { RefitResult } from '../refit/refit.ts';
 import { readSite } from '../site-file.ts';
@@ -73,8 +73,12 @@ export function refitCommand(): Command {
 }
 
 async function run(options: RefitCommandOptions): Promise<void> {
+  await withRoom(options.out, () => refitInto(options));
+}
+
+async function refitInto(options: RefitCommandOptions): Promise<void> {
   const site = readSite(options.site);
-  const previous = options.previous === undefined ? null : openBundleFile(options.previous);
+  const previous = options.previous === undefined ? null : openProvenFile(options.previous);
   const span = timeSpan(options, site.timeZone);
   const { fromMs, untilMs } = span;
   const [{ readArchive }, { refit }] = await Promise.all([import('../desk/archive.ts'), import('../refit/refit.ts')]);

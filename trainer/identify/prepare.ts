@@ -41,7 +41,7 @@ const LEAST_LONG_GAP = 6;
 /**
  * Prepares.
  *
- * shapes  lattices (nc)
+ * shapes  lattices (nc); hasEarlier: something is known of the time before the history as well
  * units   as the parts state
  * throws  TrainError 'history' naming a channel without readings, or where every signal is constant
  * source  none
@@ -52,8 +52,8 @@ export function prepareHistory(
   site: Site,
   lattices: readonly { readonly step: number; readonly offset: number }[],
   split: Split,
-  earlier: Earlier | null = null,
-): Prepared {
+  hasEarlier = false,
+): Omit<Prepared, 'earlier'> {
   const series = withoutExcluded(seen);
   const learnTicks = split.learn.toTick - split.learn.fromTick;
   const calibrateTicks = split.calibrate.toTick - split.calibrate.fromTick;
@@ -86,9 +86,8 @@ export function prepareHistory(
     otherPeriods: others,
     learnTicks,
     calibrateTicks,
-    earlier,
     warnings: [
-      ...excludedNotes(seen),
+      ...excludedNotes(seen, hasEarlier),
       ...stuckWarnings(series, withoutStuck(series, stuck), ends),
       ...warningsOf(series, scalings, period),
       ...excursionWarnings(series, excursions, ends),
