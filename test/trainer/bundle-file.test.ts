@@ -6,7 +6,7 @@ import { encodeBundle } from '@stillwell/protocol';
 import { modelFromBundle, runProbe } from '@stillwell/runtime/filter';
 import { afterEach, beforeEach, expect, it } from 'vitest';
 import { openBundleFile, openProvenFile } from '../../trainer/bundle-file.ts';
-import { syntheticBundle } from '../support/models.ts';
+import { sampleBundle } from '../support/sample-bundle.ts';
 
 const folder = mkdtempSync(join(tmpdir(), 'stillwell-bundle-file-'));
 beforeEach(() => mkdirSync(folder, { recursive: true }));
@@ -21,7 +21,7 @@ it('says of a file far larger than any bundle that it is none, and what to do', 
 });
 
 it('does not hand out a model for scoring whose probe comes out otherwise', () => {
-  const sound = syntheticBundle();
+  const sound = sampleBundle();
   const run = runProbe(modelFromBundle(sound), sound.probe.seed, 32);
   const stated = new Uint8Array(createHash('sha256').update(run.outputs).digest());
   const proven = { ...sound, probe: { ...sound.probe, ticks: 32, digest: stated, last: run.last } };
