@@ -1,9 +1,10 @@
 /**
  * MessagePack, in and out: the one caller of the MessagePack library. Bytes are scanned before they are decoded
  * (scan.ts); a schema judges what comes out (the caller's). Values are written in one form only (pack.ts), so equal
- * documents are equal bytes.
+ * documents are equal bytes. The library's /unpack comes without its streams and its native reader of long text, which
+ * start slowly and serve no document of ours.
  */
-import { Unpackr } from 'msgpackr';
+import { Unpackr } from 'msgpackr/unpack';
 import { ProtocolError } from './errors.ts';
 import { MAX_BUNDLE_BYTES, MAX_DEPTH, MAX_ITEMS } from './limits.ts';
 import { packValue } from './pack.ts';

@@ -2,10 +2,11 @@
  * Writes a site file that `parseSite` reads back to the same site: for a first file made from a history, with a comment
  * beside what was found rather than declared.
  */
-import { Document, isMap, isNode, isScalar, isSeq } from 'yaml';
+import type { Document } from 'yaml';
 import { formatDuration } from './duration.ts';
 import type { Input, PayloadReading, Signal, Site } from './site.ts';
 import { type Exclusion, plainExclusion } from './site-exclude.ts';
+import { yamlLibrary } from './yaml-library.ts';
 
 const plainPayload = (how: PayloadReading): unknown => {
   if (how.kind === 'number') return 'number';
@@ -58,6 +59,7 @@ const stepsOf = (path: string): readonly string[] => path.split(/[.[\]]+/).filte
 const oneLine = (text: string): string => ` ${text.replace(/\s+/g, ' ').trim()}`;
 
 const addComment = (document: Document, path: string, text: string): void => {
+  const { isMap, isNode, isScalar, isSeq } = yamlLibrary();
   const node: unknown = document.getIn(
     stepsOf(path).map((step) => (/^\d+$/.test(step) ? Number(step) : step)),
     true,
@@ -74,6 +76,7 @@ const addComment = (document: Document, path: string, text: string): void => {
  *         path the file does not have is passed over
  */
 export const formatSite = (site: Site, comments: Readonly<Record<string, string>> = {}): string => {
+  const { Document, isMap, isSeq } = yamlLibrary();
   const document = new Document(plainSite(site), { version: '1.2', schema: 'core' });
   for (const list of ['signals', 'inputs'] as const) {
     for (let i = 0; i < site[list].length; i++) {
@@ -98,6 +101,7 @@ export const formatSite = (site: Site, comments: Readonly<Record<string, string>
 
 /** The key `exclude` of a site file by itself, an entry a line, as it may be pasted into one. */
 export const formatExclude = (entries: readonly Exclusion[]): string => {
+  const { Document, isMap } = yamlLibrary();
   const document = new Document({ exclude: entries.map(plainExclusion) }, { version: '1.2', schema: 'core' });
   for (let i = 0; i < entries.length; i++) {
     const node: unknown = document.getIn(['exclude', i], true);

@@ -1,10 +1,11 @@
 /**
  * A YAML file written by people: read to plain values, and every refusal with the line and column it stands at.
  */
-import { type Document, isAlias, isMap, isNode, isScalar, isSeq, LineCounter, parseDocument } from 'yaml';
+import type { Document } from 'yaml';
 import { ProtocolError, type ProtocolErrorCode } from './errors.ts';
 import { type Fault, formatFault } from './issue.ts';
 import { formatPath } from './path.ts';
+import { yamlLibrary } from './yaml-library.ts';
 
 /** What a kind of file is called in refusals. */
 export interface YamlKind {
@@ -36,6 +37,7 @@ const yamlText = (error: { code: string; message: string }): string => {
 
 /** Offset of the value a path names, of its key for an unknown one, or of the nearest map around a missing one. */
 const offsetOf = (document: Document.Parsed, fault: Pick<Fault, 'path' | 'isUnknownKey'>): number => {
+  const { isAlias, isMap, isNode, isScalar, isSeq } = yamlLibrary();
   let node: unknown = document.contents;
   let offset = document.contents?.range[0] ?? 0;
   for (const [depth, step] of fault.path.entries()) {
@@ -70,6 +72,7 @@ export const readYamlFile = (text: string, fileName: string, kind: YamlKind): Ya
       { details: { fileName } },
     );
   }
+  const { LineCounter, parseDocument } = yamlLibrary();
   const lines = new LineCounter();
   const faultAt = (offset: number, words: string, path = ''): ProtocolError => {
     const { line, col } = lines.linePos(offset);
