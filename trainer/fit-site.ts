@@ -16,6 +16,7 @@ import type { OlderSink } from './history/older.ts';
 import { type FitResult, fit } from './pipeline.ts';
 import type { Progress } from './progress.ts';
 import { FactorsBeside } from './threads/factors-beside.ts';
+import { JudgingBeside } from './threads/judging-beside.ts';
 import { hasSecondCore, SecondThread } from './threads/second-thread.ts';
 import type { TimeSpan } from './time-option.ts';
 
@@ -96,10 +97,15 @@ async function fitLoaded(
   const isBeside = older !== null && keeper instanceof FactorsBeside;
   const earlier = isBeside ? { earlierToCome: keeper.earlier() } : { earlier: older && (await keeper.earlier()) };
   const closing = isBeside ? keeper.close(series) : null;
+  const judging = isBeside ? new JudgingBeside() : null;
   const result = await fit(
     { series, site, survey, lattices, ...earlier },
     { ...options, progress: (name) => watch.step(name) },
-  ).finally(() => watch.end());
+    judging,
+  ).finally(() => {
+    watch.end();
+    return judging?.end();
+  });
   const candidate = await candidateFiles(out, site, survey, result);
   const factors = await (closing ?? keeper.close(series));
   const files = [...candidate, ...(factors === null ? [] : [{ path: join(out, FACTORS_FILE), bytes: factors }])];

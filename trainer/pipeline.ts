@@ -16,16 +16,18 @@ import { type Taught, teach } from './identify/teach.ts';
 import { type AskedLimit, declaredLimits } from './judge/crossings.ts';
 import { judge, type Verdicts, verdictSteps } from './judge/gate.ts';
 import { type Hindcast, hindcast } from './judge/hindcast.ts';
+import { scoreEvery } from './judge/origin-budget.ts';
 import { type PlanWorth, planWorth } from './judge/plan-worth.ts';
 import { type Reliance, reliance } from './judge/reliance.ts';
 import { settle } from './judge/settle.ts';
-import { type KindSections, withCalibration } from './kinds/candidate.ts';
+import { type Candidate, type KindSections, withCalibration } from './kinds/candidate.ts';
 import { chooseKind, type KindChoice, type Tried } from './kinds/choose-kind.ts';
 import { learnPlans, type Plans, plannedInputs } from './plans.ts';
-import { type Audit, auditErrors, checkAtRest } from './quantise/audit.ts';
+import { type Audit, auditRounding } from './quantise/audit.ts';
 import { type Calibration, openCalibration, type Surroundings } from './quantise/float-model.ts';
 import { checkOptions, type Split, splitHistory } from './requirements.ts';
 import type { TickSpan } from './span.ts';
+import type { JudgingBeside } from './threads/judging-beside.ts';
 
 export { FIT_DEFAULTS, type FitInput, type FitOptions } from './fit-options.ts';
 
@@ -89,11 +91,15 @@ const NOT_FROM_ALL = 'From all ticks no model of this size could be solved for, 
 const MOST_RIVALS = 6;
 
 /**
- * Fits a site's history.
+ * Fits a site's history; with a thread for judging `beside`, which is for long ones, sooner and to the same bytes.
  *
  * throws  TrainError 'options' or 'history' where the person can mend it, 'fit' where the numbers do not allow a model
  */
-export async function fit(given: FitInput, options: FitOptions): Promise<FitResult> {
+export async function fit(
+  given: FitInput,
+  options: FitOptions,
+  beside: JudgingBeside | null = null,
+): Promise<FitResult> {
   checkOptions(options);
   const clock = startClock(options.progress);
   const split = splitHistory(given.series, given.site, options);
@@ -105,8 +111,13 @@ export async function fit(given: FitInput, options: FitOptions): Promise<FitResu
   clock.lap('learning');
   const taught = teach(prepared);
   clock.lap('choosing the kind and size, and calibrating');
-  const small = shrink(input, options, split, prepared, taught);
+  beside?.begin();
+  const small = await shrink(input, options, split, prepared, taught, beside);
   clock.lap('judging');
+  const judged = indices(split.judged, input.series);
+  // Where few origins are judged, rounding is held against all of them, once they are there.
+  const isLong = scoreEvery(judged.toTick - judged.fromTick) > 1;
+  const checks = isLong ? beside?.check(small.bundle, small.float, input.series, judged) : undefined;
   const units = [...input.site.signals, ...input.site.inputs].map((signal) => signal.unit);
   const cast = hindcast(
     modelFromBundle(small.bundle),
@@ -115,16 +126,12 @@ export async function fit(given: FitInput, options: FitOptions): Promise<FitResu
     units,
   );
   const verdicts = judge(cast);
-  const audit = auditRounding(small, cast, input.series, split);
+  const model = modelFromBundle(small.bundle);
+  const audit = (await checks)?.audit ?? auditRounding(model, small.float, input.series, judged, cast.mseStandardised);
   clock.lap('finding what plans are worth');
-  const worth = planWorth(
-    modelFromBundle(small.bundle),
-    input.series,
-    indices(split.judged, input.series),
-    small.plans.planned,
-  );
+  const worth = planWorth(model, input.series, judged, small.plans.planned);
   clock.lap('finding what the forecasts rest on');
-  const rest = reliance(modelFromBundle(small.bundle), input.series, indices(split.judged, input.series));
+  const rest = checks === undefined ? reliance(model, input.series, judged) : (await checks).reliance;
   clock.lap('writing the candidate');
   const all = options.useAll ? learnFromAll(input.series, prepared, small) : null;
   const parts = all ?? small.parts;
@@ -163,7 +170,14 @@ interface Small {
   readonly float: Model;
 }
 
-function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Prepared, taught: Taught): Small {
+async function shrink(
+  input: FitInput,
+  options: FitOptions,
+  split: Split,
+  prepared: Prepared,
+  taught: Taught,
+  beside: JudgingBeside | null,
+): Promise<Small> {
   const around: Surroundings = {
     ...prepared.around,
     bank: taught.choice.bank,
@@ -192,12 +206,16 @@ function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Pr
   const bytesLeft = (sections: KindSections): number =>
     limit - documentBytes(partsOf(sections, { room: ' '.repeat(SETTLED_ROOM) }));
   const { series, site } = input;
-  const choice = chooseKind({ series, site, options, split, prepared, taught, around, bytesLeft });
-  const { candidate } = choice;
-  const plans = learnPlans(candidate, prepared, split.calibrate.toTick - series.firstTick, planned);
   const span = indices(split.calibrate, series);
   const wanted = { coverage: options.coverage, limits: siteLimits(site), stuck: prepared.stuck };
-  const calibration = settle(candidate.rounded, prepared.calm, span, wanted);
+  const begun = new Map<Candidate, Promise<Calibration>>();
+  const attempt = { series, site, options, split, prepared, taught, around, bytesLeft };
+  const choice = chooseKind(attempt, (first) => {
+    if (beside !== null) begun.set(first, beside.settle(first.rounded, prepared.calm, span, wanted));
+  });
+  const { candidate } = choice;
+  const plans = learnPlans(candidate, prepared, split.calibrate.toTick - series.firstTick, planned);
+  const calibration = await (begun.get(candidate) ?? settle(candidate.rounded, prepared.calm, span, wanted));
   const parts = { ...partsOf(candidate.sections, candidate.settled), calibration, response: plans.response?.tensors };
   const bundle = composeBundle(parts);
   return { choice, bundle, parts, plans, float: withCalibration(candidate.float, calibration) };
@@ -205,14 +223,6 @@ function shrink(input: FitInput, options: FitOptions, split: Split, prepared: Pr
 
 function siteLimits(site: FitInput['site']): AskedLimit[] {
   return declaredLimits(site.signals.map((signal) => signal.limits));
-}
-
-function auditRounding(small: Small, cast: Hindcast, series: Series, split: Split): Audit {
-  const model = modelFromBundle(small.bundle);
-  const judged = indices(split.judged, series);
-  const settled = { fromTick: Math.max(0, judged.fromTick - 4 * model.horizon), toTick: judged.fromTick };
-  checkAtRest(model, series, settled);
-  return auditErrors(model, small.float, series, judged, cast.mseStandardised);
 }
 
 /**

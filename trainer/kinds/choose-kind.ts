@@ -50,7 +50,8 @@ export interface KindChoice {
 }
 
 /**
- * Tries and chooses.
+ * Tries and chooses. `whenFirst` is told of the first candidate before others are tried: what it will need, if it is
+ * chosen, can be begun beside.
  *
  * shapes  as Attempt
  * units   as Attempt
@@ -58,7 +59,7 @@ export interface KindChoice {
  * source  own choice
  * cost    one fit and one replay of the calibration part a kind
  */
-export function chooseKind(attempt: Attempt): KindChoice {
+export function chooseKind(attempt: Attempt, whenFirst: (candidate: Candidate) => void = () => {}): KindChoice {
   const { kind } = attempt.options;
   const kinds = kind === 'auto' ? (Object.keys(KINDS) as Model['kind'][]) : [kind];
   const candidates: Candidate[] = [];
@@ -70,7 +71,8 @@ export function chooseKind(attempt: Attempt): KindChoice {
     const switched = candidates.find((candidate) => candidate.kind === 'switched');
     if (one === 'featured' && switched !== undefined && errorOf(switched) < SERVED_BY_MODES) continue;
     const candidate = tryKind(attempt, one);
-    if (candidate !== null) candidates.push(candidate);
+    if (candidate === null) continue;
+    if (candidates.push(candidate) === 1 && kinds.length > 1) whenFirst(candidate);
   }
   if (candidates.length === 0) {
     throw new TrainError(

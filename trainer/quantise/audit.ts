@@ -24,7 +24,29 @@ export interface Audit {
 const MOST_AUDITED = 2000;
 
 /**
- * Squared errors of both over the judged part; `rounded` has been replayed over it, with mean squared errors `known`.
+ * Both: whether the rounded model rests, on the ticks before the judged part, and what rounding cost there.
+ *
+ * shapes  as `auditErrors`
+ * units   standardised²
+ * throws  TrainError 'fit' as `checkAtRest`; FilterError if a model does not fit the series
+ * source  none
+ * cost    as `auditErrors`
+ */
+export function auditRounding(
+  rounded: Model,
+  float: Model,
+  series: Series,
+  judged: TickSpan,
+  known: Float64Array | null,
+): Audit {
+  const before = { fromTick: Math.max(0, judged.fromTick - 4 * rounded.horizon), toTick: judged.fromTick };
+  checkAtRest(rounded, series, before);
+  return auditErrors(rounded, float, series, judged, known);
+}
+
+/**
+ * Squared errors of both over the judged part; `rounded` has been replayed over it, with mean squared errors `known`;
+ * null where it has not been, or not yet: then it is.
  *
  * shapes  span of indices into the series; known (ny × H)
  * units   standardised²
@@ -37,7 +59,7 @@ export function auditErrors(
   float: Model,
   series: Series,
   { fromTick, toTick }: TickSpan,
-  known: Float64Array,
+  known: Float64Array | null,
 ): Audit {
   const isLong = scoreEvery(toTick - fromTick) > 1;
   const span = { fromTick: isLong ? toTick - MOST_AUDITED - rounded.horizon : fromTick, toTick };
@@ -47,7 +69,7 @@ export function auditErrors(
     return replayError(model, series, span, { standing });
   };
   const floatMse = errorOf(float);
-  const quantisedMse = isLong ? errorOf(rounded) : meanOf(known);
+  const quantisedMse = isLong || known === null ? errorOf(rounded) : meanOf(known);
   return { floatMse, quantisedMse, ratio: floatMse > 0 ? quantisedMse / floatMse : 1 };
 }
 

@@ -1,8 +1,17 @@
 /** What the main thread of a fit may ask of its second thread, and what comes back: plain values that travel as they are. */
-import type { Site } from '@stillwell/protocol';
+import type { Bundle, Site } from '@stillwell/protocol';
+import type { Model } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
+import type { Reliance } from '../judge/reliance.ts';
+import type { Settled } from '../judge/settle.ts';
+import type { Audit } from '../quantise/audit.ts';
+import type { Calibration } from '../quantise/float-model.ts';
+import type { TickSpan } from '../span.ts';
 
-/** By name: what goes with it, and the answer. Asked in this order: later ones use what earlier ones left. */
+/**
+ * By name: what goes with it, and the answer. Asked in this order: later ones use what earlier ones left. A thread for factors
+ * ends with 'close', one for judging begins with 'judging' and ends with 'check'.
+ */
 export interface Requests {
   /** Factors of a site from nothing; those begun before are forgotten. */
   begin: { given: { readonly site: Site; readonly halfLifeTicks: number | null }; got: null };
@@ -15,6 +24,24 @@ export interface Requests {
   earlier: { given: null; got: Uint8Array | null };
   /** The window, which goes in last: the finished file; null where the site goes without. */
   close: { given: Series; got: Uint8Array | null };
+  /** Loads what follows needs. */
+  judging: { given: null; got: null };
+  /** All that a model gets from the calibration part; the span in indices. */
+  settle: {
+    given: { readonly model: Model; readonly series: Series; readonly span: TickSpan; readonly wanted: Settled };
+    got: Calibration;
+  };
+  /** Of the judged part, in indices. */
+  check: {
+    given: { readonly bundle: Bundle; readonly float: Model; readonly series: Series; readonly judged: TickSpan };
+    got: Checks;
+  };
+}
+
+/** What is found of a chosen model beside its hindcast. */
+export interface Checks {
+  readonly audit: Audit;
+  readonly reliance: Reliance | null;
 }
 
 /** One request under way. */

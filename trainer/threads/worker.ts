@@ -1,13 +1,16 @@
 /**
  * The second thread of a fit: answers one request after the other, in the order they came. It keeps what is light to load,
- * since it starts while the first file is being opened.
+ * since it starts while the first file is being opened; what is needed to judge is loaded when that is asked for.
  */
 import { parentPort } from 'node:worker_threads';
 import { TrainError } from '../errors.ts';
 import { FactorsKeeper } from '../factors/keeper.ts';
 import type { Answered, Asked, Problem, Requests } from './requests.ts';
 
-type Answers = { readonly [What in keyof Requests]: (given: Requests[What]['given']) => Requests[What]['got'] };
+type Got<What extends keyof Requests> = Requests[What]['got'];
+type Answers = {
+  readonly [What in keyof Requests]: (given: Requests[What]['given']) => Got<What> | Promise<Got<What>>;
+};
 
 let keeper: FactorsKeeper | null = null;
 
@@ -27,16 +30,26 @@ const ANSWERS: Answers = {
   },
   earlier: () => begun().earlierBytes(),
   close: (window) => begun().close(window),
+  judging: async () => {
+    await judging();
+    return null;
+  },
+  settle: async (given) => (await judging()).settled(given),
+  check: async (given) => (await judging()).checked(given),
 };
+
+function judging(): Promise<typeof import('./judging.ts')> {
+  return import('./judging.ts');
+}
 
 function begun(): FactorsKeeper {
   if (keeper === null) throw new Error('The second thread was asked for factors before they were begun.');
   return keeper;
 }
 
-function answer({ id, what, given }: Asked): Answered {
+async function answer({ id, what, given }: Asked): Promise<Answered> {
   try {
-    return { id, got: (ANSWERS[what] as (given: unknown) => unknown)(given) };
+    return { id, got: await (ANSWERS[what] as (given: unknown) => unknown)(given) };
   } catch (error) {
     return { id, problem: problemOf(error as Error) };
   }
@@ -53,8 +66,16 @@ function plain(details: Readonly<Record<string, unknown>>): Readonly<Record<stri
   return JSON.parse(JSON.stringify(details)) as Record<string, unknown>;
 }
 
+/** No other comes after one of these. */
+const LAST: ReadonlySet<keyof Requests> = new Set(['close', 'check']);
+
+/** Ends when all asked so far is answered. */
+let turn = Promise.resolve();
+
 parentPort?.on('message', (asked: Asked) => {
-  parentPort?.postMessage(answer(asked));
-  // The last request: the thread ends by itself, since the main one is busy and would hold its memory for long.
-  if (asked.what === 'close') parentPort?.close();
+  turn = turn.then(async () => {
+    parentPort?.postMessage(await answer(asked));
+    // The thread ends by itself, since the main one is busy and would hold its memory for long.
+    if (LAST.has(asked.what)) parentPort?.close();
+  });
 });

@@ -95,14 +95,19 @@ it('a long history gives the same files with it and without', async () => {
   const [level, flow] = wanderingDays(2, 97_000, 3) as [Float64Array, Float64Array];
   const rows = Array.from(level, (_, n) => `${1.7e9 + 3600 * n},${level[n]!.toFixed(1)},${flow[n]!.toFixed(1)}`);
   writeFileSync(history, `time,level,flow\n${rows.join('\n')}\n`);
-  const { progress: _, ...options } = { ...FIT_DEFAULTS, kind: 'linear' as const };
+  const { progress: _, ...options } = FIT_DEFAULTS;
   const job = { site: SITE, history: [history], out: '/out', zone: null, span: {}, halfLifeTicks: null, options };
   const watch = { reading: { update: () => {}, end: () => {} }, step: () => {}, end: () => {} };
   const seen: unknown[] = [];
   for (const threads of [1, 2] as const) {
-    const { files, loaded, notes } = await fitSite({ ...job, threads }, watch);
+    const { files, loaded, notes, result } = await fitSite({ ...job, threads }, watch);
     expect(loaded.older?.ticks).toBeGreaterThan(30_000);
-    seen.push([files.map(({ path, bytes }) => [path, createHash('sha256').update(bytes).digest('hex')]), notes]);
+    seen.push([
+      files.map(({ path, bytes }) => [path, createHash('sha256').update(bytes).digest('hex')]),
+      notes,
+      result.audit,
+      result.reliance,
+    ]);
   }
   expect(seen[1]).toEqual(seen[0]);
   expect((seen[0] as [string[][]])[0].map(([path]) => path)).toContain('/out/factors.swf');

@@ -1,0 +1,44 @@
+/**
+ * Judging on a second thread of a fit, begun when that of the factors has most likely ended, so that memory holds one of them:
+ * what is settled of the first kind while others are tried, and the checks of the chosen one while it is replayed. The same
+ * work, so the same results.
+ */
+import type { Bundle } from '@stillwell/protocol';
+import type { Model } from '@stillwell/runtime/filter';
+import type { Series } from '../history/series.ts';
+import type { Settled } from '../judge/settle.ts';
+import type { Calibration } from '../quantise/float-model.ts';
+import type { TickSpan } from '../span.ts';
+import type { Checks } from './requests.ts';
+import { SecondThread } from './second-thread.ts';
+
+/** Of one fit; first of all it is begun. */
+export class JudgingBeside {
+  #thread: SecondThread | null = null;
+
+  /** Starts the thread. */
+  begin(): void {
+    this.#thread = new SecondThread();
+    this.#thread.ask('judging', null);
+  }
+
+  /** As `settle` on the main thread. */
+  settle(model: Model, series: Series, span: TickSpan, wanted: Settled): Promise<Calibration> {
+    return this.#begun().ask('settle', { model, series, span, wanted });
+  }
+
+  /** As `auditRounding` of a long judged part, and `reliance`. */
+  check(bundle: Bundle, float: Model, series: Series, judged: TickSpan): Promise<Checks> {
+    return this.#begun().ask('check', { bundle, float, series, judged });
+  }
+
+  /** Ends the thread, whatever it is at. */
+  async end(): Promise<void> {
+    await this.#thread?.end();
+  }
+
+  #begun(): SecondThread {
+    if (this.#thread === null) throw new Error('Judging beside was asked for before it was begun.');
+    return this.#thread;
+  }
+}
