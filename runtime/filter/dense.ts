@@ -21,6 +21,10 @@ export function multiply(
   out: Float64Array,
   outAt: number,
 ): void {
+  if (cols === 4) {
+    multiplyFour(matrix, rows, vector, vectorAt, out, outAt);
+    return;
+  }
   const whole = cols - (cols % 4);
   let row = 0;
   // Two rows at a time, so that each number of the vector is read once for both; every sum stays in its own order.
@@ -65,6 +69,24 @@ export function multiply(
     out[outAt + row + 1] = b0 + b1 + (b2 + b3);
   }
   if (row < rows) multiplyRow(matrix, row * cols, cols, vector, vectorAt, out, outAt + row);
+}
+
+/** Four columns, as a path's few curves often are: the vector is read once. The zero is what the sums begin with. */
+function multiplyFour(
+  matrix: Float64Array,
+  rows: number,
+  vector: Float64Array,
+  vectorAt: number,
+  out: Float64Array,
+  outAt: number,
+): void {
+  const v0 = vector[vectorAt];
+  const v1 = vector[vectorAt + 1];
+  const v2 = vector[vectorAt + 2];
+  const v3 = vector[vectorAt + 3];
+  for (let row = 0, a = 0; row < rows; row++, a += 4) {
+    out[outAt + row] = 0 + (matrix[a] * v0 + matrix[a + 1] * v1 + (matrix[a + 2] * v2 + matrix[a + 3] * v3));
+  }
 }
 
 /** The last row of an odd number. */

@@ -39,6 +39,8 @@ export interface Bounds {
   readonly steps: Int32Array;
   /** Largest move of the radius of each scored step, as a share of the calibrated one. */
   readonly rates: Float64Array;
+  /** Where the first signal's forecast of each scored step stands at this tick; for work inside one call. */
+  readonly slots: Int32Array;
   /** Numbers of a forecast under way: its median; from the second tracker on its half-width too, negative if made in a gap. */
   readonly issuedWidth: 1 | 2;
   /**
@@ -98,6 +100,7 @@ export function createBounds(model: CommonModel): Bounds {
     rates: Float64Array.from(steps, (h) =>
       isFirst ? boundsRate : Math.min(boundsRate, boundsLongRate / (h + RATE_AHEAD)),
     ),
+    slots: new Int32Array(steps.length),
     issuedWidth,
     issued: new Float32Array(ny * issuedWidth * steps.reduce((sum, h) => sum + h, 0)).fill(Number.NaN),
     quantile,

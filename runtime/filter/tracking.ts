@@ -53,28 +53,48 @@ export function trackBounds(model: CommonModel, bounds: Bounds, state: FilterSta
   bounds.tick = tick;
   const isWarm = bounds.warmed >= model.warmupTicks;
   if (!isWarm) bounds.warmed++;
-  const { steps, issuedWidth: width } = bounds;
+  const { steps, slots, issuedWidth: width } = bounds;
   const ny = model.signalCount;
+  for (let k = 0, ring = 0; k < steps.length; ring += steps[k] * ny, k++)
+    slots[k] = (ring + (tick % steps[k]) * ny) * width;
   for (let i = 0; i < ny; i++) {
     if (state.observed[i] === MISSING || state.observed[i] === STUCK) continue;
-    for (let k = 0, ring = 0; k < steps.length; ring += steps[k] * ny, k++) {
-      const slot = (ring + (tick % steps[k]) * ny + i) * width;
-      if (width === 1) scoreFirst(model, bounds, state, i, k, slot);
-      else score(model, bounds, state, i, k, slot);
+    if (width === 1) {
+      for (let k = 0; k < steps.length; k++) scoreFirst(model, bounds, state, i, k, slots[k] + i);
+    } else {
+      for (let k = 0; k < steps.length; k++) score(model, bounds, state, i, k, slots[k] + 2 * i);
+      spreadRadii(model, bounds, i);
     }
-    if (width === 2) spreadRadii(model, bounds, i);
   }
-  for (let i = 0; i < ny; i++) {
-    const isAged = state.age[i] > 0;
-    const isScored = isWarm && (width === 1 ? !isAged : state.started[i] === 1);
-    if (width === 2) radiiOf(model, bounds, state, i, bounds.scratch, 0);
-    for (let k = 0, ring = 0; k < steps.length; ring += steps[k] * ny, k++) {
-      const h = steps[k];
-      const slot = (ring + (tick % h) * ny + i) * width;
-      const median = (medianPath[i * model.horizon + h - 1] - model.mean[i]) / model.scale[i];
-      bounds.issued[slot] = isScored ? median : Number.NaN;
-      if (width === 2) bounds.issued[slot + 1] = isAged ? -bounds.scratch[h - 1] : bounds.scratch[h - 1];
-    }
+  for (let i = 0; i < ny; i++) issue(model, bounds, state, i, isWarm, medianPath);
+}
+
+/** Puts the new path of a signal, and its half-widths, where those just scored stood. */
+function issue(
+  model: CommonModel,
+  bounds: Bounds,
+  state: FilterState,
+  signal: number,
+  isWarm: boolean,
+  medianPath: Float64Array,
+): void {
+  const { steps, slots, issued, issuedWidth: width } = bounds;
+  const row = signal * model.horizon - 1;
+  const mean = model.mean[signal];
+  const scale = model.scale[signal];
+  const isAged = state.age[signal] > 0;
+  const isScored = isWarm && (width === 1 ? !isAged : state.started[signal] === 1);
+  for (let k = 0; k < steps.length; k++) {
+    issued[slots[k] + width * signal] = isScored ? (medianPath[row + steps[k]] - mean) / scale : Number.NaN;
+  }
+  if (width === 1) return;
+  if (isAged) {
+    radiiOf(model, bounds, state, signal, bounds.scratch, 0);
+    for (let k = 0; k < steps.length; k++) issued[slots[k] + 2 * signal + 1] = -bounds.scratch[steps[k] - 1];
+  } else {
+    // What radiiOf gives for a signal read at this tick.
+    const { radius } = bounds;
+    for (let k = 0; k < steps.length; k++) issued[slots[k] + 2 * signal + 1] = radius[row + steps[k]];
   }
 }
 

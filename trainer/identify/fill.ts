@@ -84,7 +84,7 @@ function fillGaps(
       profile ??= phaseMeans(z.subarray(0, learnTicks), read, period);
       inLongGap?.fill(LONG_GAP, t, end);
     }
-    const isAcross = [learnTicks, calibrateEnd].some((edge) => t < edge && end >= edge);
+    const isAcross = (t < learnTicks && end >= learnTicks) || (t < calibrateEnd && end >= calibrateEnd);
     bridge(z, t, end, isLong ? profile : null, !isAcross && end < z.length);
     t = end;
   }

@@ -106,23 +106,29 @@ class PairSolver {
     const uIm = driveIm[a];
     const vRe = driveRe[b];
     const vIm = sign * driveIm[b];
-    const part = (from: Float64Array, at: number, complex: number): number => (complex === 1 ? from[at + 1] : 0);
-    const ends = (from: Float64Array): readonly [number, number] => {
-      const xIm = part(from, f, isComplex[a]);
-      const yIm = sign * part(from, g, isComplex[b]);
-      return [from[f] * from[g] - xIm * yIm, from[f] * yIm + xIm * from[g]];
-    };
-    const [e0Re, e0Im] = ends(this.#before);
-    const [e1Re, e1Im] = ends(this.#after);
+    const before = this.#before;
+    const after = this.#after;
+    const cross = this.#cross;
+    const hasIm = isComplex[a] === 1;
+    const hasOtherIm = isComplex[b] === 1;
+    // Spelled out: this is gone through for every pair of features, and small arrays made here would be half of a fit's.
+    const x0Im = hasIm ? before[f + 1] : 0;
+    const y0Im = sign * (hasOtherIm ? before[g + 1] : 0);
+    const e0Re = before[f] * before[g] - x0Im * y0Im;
+    const e0Im = before[f] * y0Im + x0Im * before[g];
+    const x1Im = hasIm ? after[f + 1] : 0;
+    const y1Im = sign * (hasOtherIm ? after[g + 1] : 0);
+    const e1Re = after[f] * after[g] - x1Im * y1Im;
+    const e1Im = after[f] * y1Im + x1Im * after[g];
     const abRe = aRe * bRe - aIm * bIm;
     const abIm = aRe * bIm + aIm * bRe;
     const eRe = e0Re - e1Re;
     const eIm = e0Im - e1Im;
     // a v N(a, j) + b u N(b, i) + u v D(i, j)
-    const nRe = this.#cross[j * p + f];
-    const nIm = part(this.#cross, j * p + f, isComplex[a]);
-    const mRe = this.#cross[i * p + g];
-    const mIm = sign * part(this.#cross, i * p + g, isComplex[b]);
+    const nRe = cross[j * p + f];
+    const nIm = hasIm ? cross[j * p + f + 1] : 0;
+    const mRe = cross[i * p + g];
+    const mIm = sign * (hasOtherIm ? cross[i * p + g + 1] : 0);
     const avRe = aRe * vRe - aIm * vIm;
     const avIm = aRe * vIm + aIm * vRe;
     const buRe = bRe * uRe - bIm * uIm;

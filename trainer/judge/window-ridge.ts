@@ -66,10 +66,12 @@ export function forecastWindow(
 ): void {
   const now = y[at];
   out.fill(now);
-  const away = (lag: number): number => y[Math.max(0, at - lag)] - now;
   let k = 1;
   for (; k + 3 <= lags; k += 4) {
-    const [f0, f1, f2, f3] = [away(k), away(k + 1), away(k + 2), away(k + 3)];
+    const f0 = y[Math.max(0, at - k)] - now;
+    const f1 = y[Math.max(0, at - k - 1)] - now;
+    const f2 = y[Math.max(0, at - k - 2)] - now;
+    const f3 = y[Math.max(0, at - k - 3)] - now;
     const r0 = (k - 1) * horizon;
     const r1 = r0 + horizon;
     const r2 = r1 + horizon;
@@ -79,7 +81,7 @@ export function forecastWindow(
     }
   }
   for (; k <= lags; k++) {
-    const far = away(k);
+    const far = y[Math.max(0, at - k)] - now;
     for (let h = 0; h < horizon; h++) out[h] += far * weights[(k - 1) * horizon + h];
   }
 }
