@@ -19,7 +19,8 @@ const fieldsAt = (path: readonly PropertyKey[]): readonly string[] =>
   path.length === 0 ? Object.keys(bundleSchema.shape) : [];
 
 const checkedDocument = (value: unknown): BundleDocument => {
-  const parsed = bundleSchema.safeParse(value);
+  // A program reads few bundles: to have a parser compiled for them takes longer than it saves.
+  const parsed = bundleSchema.safeParse(value, { jitless: true });
   if (parsed.success) return parsed.data;
   const fault = listFaults(parsed.error, value, fieldsAt)[0]!;
   const details = { path: formatPath(fault.path) };
