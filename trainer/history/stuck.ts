@@ -26,27 +26,27 @@ const ALL_AT_ONCE = 0.9;
 function runsOf(values: Float64Array, resting: ValuesSeen['resting']): Runs {
   const starts = new GrowingList();
   const lengths = new GrowingList();
-  let at = -1;
-  let last = -1;
-  let held = Number.NaN;
-  const close = (): void => {
-    const length = last - at + 1;
-    const rest = resting.find(({ value }) => value === held);
-    if (at < 0 || (rest !== undefined && length < ALL_AT_ONCE * rest.count)) return;
+  const close = (at: number, length: number): void => {
+    if (at < 0) return;
+    if (resting.length > 0) {
+      const rest = resting.find(({ value }) => value === values[at]);
+      if (rest !== undefined && length < ALL_AT_ONCE * rest.count) return;
+    }
     starts.push(at);
     lengths.push(length);
   };
+  let at = -1;
+  let last = -1;
   for (let n = 0; n < values.length; n++) {
     const value = values[n] as number;
     if (Number.isNaN(value)) continue;
-    if (value !== held) {
-      close();
+    if (at < 0 || value !== values[at]) {
+      close(at, last - at + 1);
       at = n;
-      held = value;
     }
     last = n;
   }
-  close();
+  close(at, last - at + 1);
   return { starts: starts.take(), lengths: lengths.take() };
 }
 
@@ -71,10 +71,13 @@ export function stuckStretches(series: Series, channel: number, seen: ValuesSeen
   const { starts, lengths } = runsOf(values, seen.resting);
   if (lengths.length === 0) return [];
   const { least } = leastStuck(lengths);
-  return Array.from(starts).flatMap((at, k) => {
+  const stretches: StuckStretch[] = [];
+  for (let k = 0; k < starts.length; k++) {
+    const at = starts[k] as number;
     const length = lengths[k] as number;
-    return length < least ? [] : [{ channel, fromIndex: at, toIndex: at + length, value: values[at] as number }];
-  });
+    if (length >= least) stretches.push({ channel, fromIndex: at, toIndex: at + length, value: values[at] as number });
+  }
+  return stretches;
 }
 
 function stuckFinding(series: Series, channel: number, { starts, lengths }: Runs): Finding | null {

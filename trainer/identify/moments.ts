@@ -228,7 +228,10 @@ function futureEnergy(input: MomentInput, block: Block): Float64Array {
     let h = 1;
     // Four steps together: their sums do not wait for one another.
     for (; h + 3 <= horizon; h += 4) {
-      let [s0, s1, s2, s3] = [0, 0, 0, 0];
+      let s0 = 0;
+      let s1 = 0;
+      let s2 = 0;
+      let s3 = 0;
       for (let t = block.fromIndex; t < block.toIndex; t++) {
         const now = y[t];
         const u = t + h;
@@ -237,7 +240,11 @@ function futureEnergy(input: MomentInput, block: Block): Float64Array {
         s2 += (y[u + 2] - now) * (y[u + 2] - now);
         s3 += (y[u + 3] - now) * (y[u + 3] - now);
       }
-      out.set([s0, s1, s2, s3], i * horizon + h - 1);
+      const at = i * horizon + h - 1;
+      out[at] = s0;
+      out[at + 1] = s1;
+      out[at + 2] = s2;
+      out[at + 3] = s3;
     }
     for (; h <= horizon; h++) {
       let sum = 0;

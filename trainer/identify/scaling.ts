@@ -40,9 +40,10 @@ export function findScalings(
   const scalings = series.values.map((y, c) => {
     const read = y.subarray(0, learnTicks).filter((value) => Number.isFinite(value));
     if (read.length < LEAST_READINGS) throw tooFew(series, c, read.length, learnTicks);
-    const scaling = scalingOf(read, steps[c]);
+    const sorted = read.slice().sort();
+    const scaling = scalingOf(read, sorted, steps[c]);
     const later = y.subarray(learnTicks, clipTicks).filter((value) => Number.isFinite(value));
-    return later.length === 0 || scaling.isConstant ? scaling : withRoomFor(scaling, read, later);
+    return later.length === 0 || scaling.isConstant ? scaling : withRoomFor(scaling, sorted, later.sort());
   });
   if (scalings.slice(0, series.signalCount).every((scaling) => scaling.isConstant)) {
     throw new TrainError(
@@ -54,19 +55,22 @@ export function findScalings(
   return scalings;
 }
 
-function scalingOf(read: Float64Array, step: number): Scaling {
-  const sorted = read.slice().sort();
+function scalingOf(read: Float64Array, sorted: Float64Array, step: number): Scaling {
   const [low, high] = believedRange(sorted);
   let sum = 0;
   let count = 0;
-  for (const value of read) {
+  for (let k = 0; k < read.length; k++) {
+    const value = read[k];
     if (value < low || value > high) continue;
     sum += value;
     count++;
   }
   const mean = sum / count;
   let squares = 0;
-  for (const value of read) if (value >= low && value <= high) squares += (value - mean) * (value - mean);
+  for (let k = 0; k < read.length; k++) {
+    const value = read[k];
+    if (value >= low && value <= high) squares += (value - mean) * (value - mean);
+  }
   const scale = Math.sqrt(squares / count);
   // Rounding alone leaves a share of 1e-12 or so of the level.
   const isConstant = !(scale > 1e-9 * Math.max(Math.abs(mean), step, Number.MIN_VALUE));
@@ -81,17 +85,26 @@ function scalingOf(read: Float64Array, step: number): Scaling {
 }
 
 /** Clips that also hold what came after the learning part: a plant that grows out of its past is not cut off by it. */
-function withRoomFor(scaling: Scaling, read: Float64Array, later: Float64Array): Scaling {
-  const all = new Float64Array(read.length + later.length);
-  all.set(read);
-  all.set(later, read.length);
-  const [low, high] = believedRange(all.sort());
+function withRoomFor(scaling: Scaling, sorted: Float64Array, later: Float64Array): Scaling {
+  const [low, high] = believedRange(merged(sorted, later));
   const room = CLIP_SHARE * (high - low);
   return {
     ...scaling,
     clipLow: Math.min(scaling.clipLow, low - room),
     clipHigh: Math.max(scaling.clipHigh, high + room),
   };
+}
+
+/** Two sorted lists as one; −0 before 0, as sorting has it. */
+function merged(a: Float64Array, b: Float64Array): Float64Array {
+  const out = new Float64Array(a.length + b.length);
+  let i = 0;
+  let j = 0;
+  for (let k = 0; k < out.length; k++) {
+    const isFirst = j === b.length || (i < a.length && (a[i] < b[j] || (a[i] === b[j] && Object.is(a[i], -0))));
+    out[k] = isFirst ? a[i++] : b[j++];
+  }
+  return out;
 }
 
 /** Smallest and largest reading that is believed. */

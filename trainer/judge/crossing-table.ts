@@ -128,13 +128,11 @@ function helps(
   if (cameTrue(halves.flat()) < LEAST_CROSSINGS) return false;
   return halves.every((half, k) => {
     const table = crossingTable(halves[1 - k], worth);
-    const put = (pairs: readonly CrossingPair[]): CrossingPair[] =>
-      pairs.map((pair) => ({ ...pair, said: tableValue(table, pair.said) }));
     const share = cameTrue(half) / half.length;
     const gain = brier(half) > share * (1 - share) ? 0 : LEAST_GAIN;
     const kept = guarded[k] ?? [];
-    const isHarmed = kept.length > 0 && brier(put(kept)) > brier(kept) + MOST_HARM;
-    return !isHarmed && brier(put(half)) <= (1 - gain) * brier(half);
+    const isHarmed = kept.length > 0 && brier(kept, table) > brier(kept) + MOST_HARM;
+    return !isHarmed && brier(half, table) <= (1 - gain) * brier(half);
   });
 }
 
@@ -142,8 +140,14 @@ function cameTrue(pairs: readonly CrossingPair[]): number {
   return pairs.filter((pair) => pair.cameTrue).length;
 }
 
-function brier(pairs: readonly CrossingPair[]): number {
-  return pairs.reduce((sum, pair) => sum + (pair.said - Number(pair.cameTrue)) ** 2, 0) / pairs.length;
+/** Brier score of what was said, or of what a table makes of it. */
+function brier(pairs: readonly CrossingPair[], table: Float64Array | null = null): number {
+  let sum = 0;
+  for (const { said, cameTrue } of pairs) {
+    const off = (table === null ? said : tableValue(table, said)) - Number(cameTrue);
+    sum += off ** 2;
+  }
+  return sum / pairs.length;
 }
 
 /** The filter's own reading of such a table. */

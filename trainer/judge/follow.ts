@@ -31,14 +31,16 @@ export class Follower {
    * `isGuardLeft`, where only the guard would have asked for it.
    */
   take(at: number, isSeen = true, isGuardLeft = false): void {
-    for (let c = 0; c < this.#readings.length; c++) this.#readings[c] = this.#series.values[c][at];
-    const tick = this.#series.firstTick + at;
-    if (!isSeen && (this.#isOpen || isGuardLeft) && foldUnseen(this.#model, this.state, tick, this.#readings)) {
+    const readings = this.#readings;
+    const { values, firstTick } = this.#series;
+    for (let c = 0; c < readings.length; c++) readings[c] = values[c][at];
+    const tick = firstTick + at;
+    if (!isSeen && (this.#isOpen || isGuardLeft) && foldUnseen(this.#model, this.state, tick, readings)) {
       this.#isBehind = true;
       return;
     }
     this.catchUp();
-    update(this.#model, this.state, tick, this.#readings);
+    update(this.#model, this.state, tick, readings);
   }
 
   /** Makes the state whole, for those who go on from it. */

@@ -101,11 +101,12 @@ export function crossingTable(pairs: readonly CrossingPair[], worth: number): Fl
     let k = 1;
     while (k < last && said > CROSSING_KNOTS[k]) k++;
     const share = (said - CROSSING_KNOTS[k - 1]) / (CROSSING_KNOTS[k] - CROSSING_KNOTS[k - 1]);
-    for (const [knot, part] of [[k - 1, 1 - share] as const, [k, share] as const]) {
-      weight[knot] += worth * part;
-      // Against the knot's own value, so that a bin's pairs lean the knot by how far they were off, not by where they lie.
-      came[knot] += worth * part * (Number(cameTrue) - said + CROSSING_KNOTS[knot]);
-    }
+    // Against the knot's own value, so that a bin's pairs lean the knot by how far they were off, not by where they lie.
+    const off = Number(cameTrue) - said;
+    weight[k - 1] += worth * (1 - share);
+    came[k - 1] += worth * (1 - share) * (off + CROSSING_KNOTS[k - 1]);
+    weight[k] += worth * share;
+    came[k] += worth * share * (off + CROSSING_KNOTS[k]);
   }
   return rising(
     // Such a lean can carry a knot past what a chance can be.

@@ -240,10 +240,12 @@ export function mapOf(factors: Factors, layout: Layout): Float64Array {
   }
   const out = new Float64Array(p * width);
   for (let f = 0; f < p; f++) {
-    const to = out.subarray(f * width, (f + 1) * width);
+    const scale = 2 ** exponents[f];
+    const to = f * width;
     for (let k = 0; k < order; k++) {
-      const weight = bottleneck[k * p + f] * 2 ** exponents[f];
-      for (let j = 0; j < width; j++) to[j] += weight * perState[k * width + j];
+      const weight = bottleneck[k * p + f] * scale;
+      const from = k * width;
+      for (let j = 0; j < width; j++) out[to + j] += weight * perState[from + j];
     }
   }
   if (factors.hasOwn) addOwnMap(factors, layout, out);

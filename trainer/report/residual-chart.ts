@@ -31,12 +31,15 @@ export function spread(values: Float64Array): { readonly mean: number; readonly 
 export function autocorrelation(values: Float64Array, maxLag: number): Float64Array {
   const { mean, sd } = spread(values);
   const out = new Float64Array(maxLag);
+  const away = new Float64Array(values.length);
+  for (let index = 0; index < away.length; index += 1) away[index] = (values[index] as number) - mean;
   for (let lag = 1; lag <= maxLag; lag += 1) {
     let sum = 0;
     let pairs = 0;
-    for (let index = lag; index < values.length; index += 1) {
-      const product = ((values[index] as number) - mean) * ((values[index - lag] as number) - mean);
-      if (!Number.isFinite(product)) continue;
+    for (let index = lag; index < away.length; index += 1) {
+      const product = (away[index] as number) * (away[index - lag] as number);
+      // 0 for a finite product alone.
+      if (product - product !== 0) continue;
       sum += product;
       pairs += 1;
     }
