@@ -94,29 +94,33 @@ export function withLags(of: LagBlock): Moments {
       }
     }
   }
-  eachRecursiveProduct(of, (d, n, c, f, value) => pair(place(d, F + n), place(c, f), value));
+  putRecursiveProducts(of, features);
   rings.features.forEach((psi, a) => {
     const row = place(Math.floor(a / L), F + (a % L));
-    for (let t = block.fromIndex; t < block.toIndex; t++) featureSums[row] += psi[t];
+    let sum = 0;
+    for (let t = block.fromIndex; t < block.toIndex; t++) sum += psi[t];
+    featureSums[row] = sum;
     for (let b = 0; b <= a; b++) {
       const other = rings.features[b];
       pair(row, place(Math.floor(b / L), F + (b % L)), dotShifted(psi, other, block.fromIndex, block.toIndex, 0));
     }
   });
-  lagsAhead(of, (c, n, column, value) => {
-    future[place(c, F + n) * width + column] = value;
-  });
+  putLagsAhead(of, F, future);
   return { ...recursive, features, future, featureSums };
 }
 
-/** Σ ψ_l of channel d times every recursive feature f of channel c: minus the sum of its products with l changes. */
-function eachRecursiveProduct(
+/**
+ * Σ ψ_l of channel d times every recursive feature f of channel c, into `features` on both sides of the diagonal: minus the
+ * sum of its products with l changes.
+ */
+function putRecursiveProducts(
   { block, poles, changes, rings, before, after, cross }: LagBlock,
-  visit: (d: number, n: number, c: number, f: number, value: number) => void,
+  features: Float64Array,
 ): void {
   const nc = changes.length;
   const p = before.length;
   const F = p / nc;
+  const each = F + rings.lags.length;
   const longest = rings.lags[rings.lags.length - 1];
   const together = productsOfChanges(changes, block, longest, -1);
   const moved = cross.slice();
@@ -127,18 +131,23 @@ function eachRecursiveProduct(
     for (let at = 0; at < sums.length; at++) sums[at] -= moved[at];
     const n = rings.lags.indexOf(back + 1);
     if (n < 0) continue;
-    for (let at = 0; at < sums.length; at++) {
-      const g = at % p;
-      visit(Math.floor(at / p), n, Math.floor(g / F), g % F, sums[at]);
+    for (let d = 0; d < nc; d++) {
+      const row = d * each + F + n;
+      for (let c = 0, at = d * p; c < nc; c++) {
+        for (let col = c * each; col < c * each + F; col++, at++) {
+          features[row * nc * each + col] = sums[at];
+          features[col * nc * each + row] = sums[at];
+        }
+      }
     }
   }
 }
 
-/** Σ ψ_l of channel c times y_i(t+h) - y_i(t), by products of readings shifted by l and h, one distance l + h at a time. */
-function lagsAhead(
-  { input, block, rings }: LagBlock,
-  visit: (c: number, n: number, column: number, value: number) => void,
-): void {
+/**
+ * Σ ψ_l of channel c times y_i(t+h) - y_i(t), into the rows of `future` after F others of each channel: by products of readings
+ * shifted by l and h, one distance l + h at a time.
+ */
+function putLagsAhead({ input, block, rings }: LagBlock, F: number, future: Float64Array): void {
   const { signalCount, horizon: H } = input;
   const { lags, padded } = rings;
   const longest = lags[lags.length - 1];
@@ -166,10 +175,9 @@ function lagsAhead(
         }
       }
       lags.forEach((l, n) => {
-        for (let h = 1; h <= H; h++) {
-          const row = l * (H + 1);
-          visit(c, n, i * H + h - 1, shifted[row + h] - shifted[row] - shifted[h] + shifted[0]);
-        }
+        const row = l * (H + 1);
+        const to = ((c * (F + lags.length) + F + n) * signalCount + i) * H - 1;
+        for (let h = 1; h <= H; h++) future[to + h] = shifted[row + h] - shifted[row] - shifted[h] + shifted[0];
       });
     }
   }
