@@ -111,7 +111,7 @@ export async function fit(
   clock.lap('learning');
   const taught = teach(prepared);
   clock.lap('choosing the kind and size, and calibrating');
-  beside?.begin();
+  await beside?.begin();
   const small = await shrink(input, options, split, prepared, taught, beside);
   clock.lap('judging');
   const judged = indices(split.judged, input.series);

@@ -1,7 +1,7 @@
 /**
- * Judging on a second thread of a fit, begun when that of the factors has most likely ended, so that memory holds one of them:
- * what is settled of the first kind while others are tried, and the checks of the chosen one while it is replayed. The same
- * work, so the same results.
+ * Judging on a second thread of a fit, begun when that of the factors has ended, so that memory holds one of them: what is
+ * settled of the first kind while others are tried, and the checks of the chosen one while it is replayed. The same work,
+ * so the same results.
  */
 import type { Bundle } from '@stillwell/protocol';
 import type { Model } from '@stillwell/runtime/filter';
@@ -14,10 +14,17 @@ import { SecondThread } from './second-thread.ts';
 
 /** Of one fit; first of all it is begun. */
 export class JudgingBeside {
+  readonly #before: Promise<unknown>;
   #thread: SecondThread | null = null;
 
+  /** After the last answer of the thread before it. */
+  constructor(before: Promise<unknown>) {
+    this.#before = before;
+  }
+
   /** Starts the thread. */
-  begin(): void {
+  async begin(): Promise<void> {
+    await this.#before;
     this.#thread = new SecondThread();
     this.#thread.ask('judging', null);
   }

@@ -15,10 +15,10 @@ const H = 6;
 const NAMES = ['level', 'flow'];
 const SERIES = seriesOf(NAMES, wanderingDays(2, 3000, 11), 2);
 
-function begun(): JudgingBeside {
-  const beside = new JudgingBeside();
+async function begun(): Promise<JudgingBeside> {
+  const beside = new JudgingBeside(Promise.resolve());
   onTestFinished(() => beside.end());
-  beside.begin();
+  await beside.begin();
   return beside;
 }
 
@@ -30,7 +30,7 @@ it('settles what the main thread would, whatever the kind', async () => {
     toTick: split.calibrate.toTick - SERIES.firstTick,
   };
   const wanted = { coverage: 0.8, limits: [{ signal: 0, value: 1, side: 'above' as const }], stuck: prepared.stuck };
-  const beside = begun();
+  const beside = await begun();
   for (const candidate of [tryLinear(attempt), tryDense(attempt)!]) {
     const here = settle(candidate.rounded, prepared.calm, span, wanted);
     expect(await beside.settle(candidate.rounded, prepared.calm, span, wanted)).toEqual(here);
@@ -47,7 +47,7 @@ it('checks as the main thread would', async () => {
   const model = modelFromBundle(bundle);
   // Another model in its place: what is told apart must be told apart there too.
   const float = { ...model, mean: model.mean.map((mean) => mean + 0.1) };
-  const found = await begun().check(bundle, float, SERIES, span);
+  const found = await (await begun()).check(bundle, float, SERIES, span);
   expect(found.audit.ratio).not.toBe(1);
   expect(found).toEqual({
     audit: auditRounding(model, float, SERIES, span, null),
@@ -63,8 +63,6 @@ it('refuses as the main thread does', async () => {
   const wanted = { coverage: 0.8, limits: [], stuck: attempt.prepared.stuck };
   const here = (): unknown => settle(rounded, short, span, wanted);
   expect(here).toThrow();
-  const refused = await begun()
-    .settle(rounded, short, span, wanted)
-    .catch((error: unknown) => error);
+  const refused = await (await begun()).settle(rounded, short, span, wanted).catch((error: unknown) => error);
   expect(here).toThrow((refused as Error).message);
 });
