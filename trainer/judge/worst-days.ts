@@ -43,9 +43,11 @@ export function worstSpells(hindcast: Hindcast, most: number): WorstSpells {
   const { toMs, fromMs, pathLoss, scale } = hindcast;
   const spellMs = LENGTHS_MS.find((ms) => (toMs - fromMs) / ms >= LEAST_SPELLS) ?? hindcast.tickMs;
   const standardised = pathLoss.map((losses, i) => losses.map((loss) => loss / scale[i] ** 2));
-  const together = Float64Array.from(hindcast.originMs, (_, k) =>
-    meanOf(Float64Array.from(standardised, (losses) => losses[k])),
-  );
+  const across = new Float64Array(standardised.length);
+  const together = hindcast.originMs.map((_, k) => {
+    for (let i = 0; i < across.length; i++) across[i] = standardised[i][k];
+    return meanOf(across);
+  });
   return {
     spellMs,
     overall: worst(hindcast, together, spellMs, most),

@@ -11,14 +11,18 @@ import { withUnit } from './markup.ts';
 export function spread(values: Float64Array): { readonly mean: number; readonly sd: number; readonly count: number } {
   let count = 0;
   let sum = 0;
-  for (const value of values) {
+  for (let index = 0; index < values.length; index += 1) {
+    const value = values[index] as number;
     if (!Number.isFinite(value)) continue;
     count += 1;
     sum += value;
   }
   const mean = count > 0 ? sum / count : Number.NaN;
   let squares = 0;
-  for (const value of values) if (Number.isFinite(value)) squares += (value - mean) ** 2;
+  for (let index = 0; index < values.length; index += 1) {
+    const value = values[index] as number;
+    if (Number.isFinite(value)) squares += (value - mean) ** 2;
+  }
   return { mean, sd: count > 1 ? Math.sqrt(squares / (count - 1)) : Number.NaN, count };
 }
 
