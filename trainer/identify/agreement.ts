@@ -61,7 +61,12 @@ export function learnAgreement(
 /** Ticks at which every channel was read and none is excluded. */
 function wholeTicks({ isRead, inLongGap }: Filled, from: number, to: number): number[] {
   const ticks: number[] = [];
-  for (let t = from; t < to; t++) if (inLongGap[t] === 0 && isRead.every((read) => read[t] === 1)) ticks.push(t);
+  for (let t = from; t < to; t++) {
+    if (inLongGap[t] !== 0) continue;
+    let c = 0;
+    while (c < isRead.length && isRead[c][t] === 1) c++;
+    if (c === isRead.length) ticks.push(t);
+  }
   return ticks;
 }
 
@@ -70,12 +75,17 @@ function spread(
   ticks: readonly number[],
 ): { readonly mean: Float64Array; readonly covariance: Float64Array } {
   const nc = values.length;
-  const mean = Float64Array.from(values, (y) => ticks.reduce((sum, t) => sum + y[t], 0) / ticks.length);
+  const mean = Float64Array.from(values, (y) => {
+    let sum = 0;
+    for (let k = 0; k < ticks.length; k++) sum += y[ticks[k]];
+    return sum / ticks.length;
+  });
   const covariance = new Float64Array(nc * nc);
   for (let i = 0; i < nc; i++) {
     for (let j = 0; j <= i; j++) {
+      const [one, other, oneMean, otherMean] = [values[i], values[j], mean[i], mean[j]];
       let sum = 0;
-      for (const t of ticks) sum += (values[i][t] - mean[i]) * (values[j][t] - mean[j]);
+      for (let k = 0; k < ticks.length; k++) sum += (one[ticks[k]] - oneMean) * (other[ticks[k]] - otherMean);
       covariance[i * nc + j] = sum / ticks.length;
       covariance[j * nc + i] = sum / ticks.length;
     }
@@ -108,14 +118,24 @@ function regression(covariance: Float64Array, nc: number, i: number): Float64Arr
 }
 
 function differencesOf(values: readonly Float64Array[], row: Float64Array, i: number, offset: number): Float64Array {
-  return values[i].map((value, t) => value - offset - values.reduce((sum, y, c) => sum + row[c] * y[t], 0));
+  const out = new Float64Array(values[i].length);
+  for (let c = 0; c < values.length; c++) {
+    const weight = row[c];
+    const y = values[c];
+    for (let t = 0; t < out.length; t++) out[t] += weight * y[t];
+  }
+  const own = values[i];
+  for (let t = 0; t < out.length; t++) out[t] = own[t] - offset - out[t];
+  return out;
 }
 
 /** How far either cumulative sum goes, as the filter computes it. */
 function furthest(differences: Float64Array, ticks: readonly number[], scale: number): number {
-  let [above, below, most] = [0, 0, 0];
-  for (const t of ticks) {
-    const share = Math.min(MOST_DIFFERENCE, Math.max(-MOST_DIFFERENCE, differences[t] / scale));
+  let above = 0;
+  let below = 0;
+  let most = 0;
+  for (let k = 0; k < ticks.length; k++) {
+    const share = Math.min(MOST_DIFFERENCE, Math.max(-MOST_DIFFERENCE, differences[ticks[k]] / scale));
     above = Math.max(0, above + share - ALLOWANCE);
     below = Math.max(0, below - share - ALLOWANCE);
     most = Math.max(most, above, below);
