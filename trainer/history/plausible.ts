@@ -48,9 +48,16 @@ export function plausibilityOf(history: History, site: Site, untilMs = Number.PO
   const spans = channelsOf(site).map((signal, c) => {
     const { times, values } = history.channels[c] as History['channels'][number];
     const isWhole = signal.range !== null || untilMs === Number.POSITIVE_INFINITY;
-    return plausibleSpan(signal, isWhole ? values : values.filter((_, i) => (times[i] as number) < untilMs));
+    return plausibleSpan(signal, isWhole ? values : readBefore(times, values, untilMs));
   });
   return { spans, untilMs };
+}
+
+function readBefore(times: Float64Array, values: Float64Array, untilMs: number): Float64Array {
+  const kept = new Float64Array(values.length);
+  let count = 0;
+  for (let i = 0; i < values.length; i++) if ((times[i] as number) < untilMs) kept[count++] = values[i] as number;
+  return kept.subarray(0, count);
 }
 
 /** What the gateway takes: no range but a declared one. */

@@ -38,11 +38,11 @@ export function findScalings(
   steps: readonly number[],
 ): Scaling[] {
   const scalings = series.values.map((y, c) => {
-    const read = y.subarray(0, learnTicks).filter((value) => Number.isFinite(value));
+    const read = finite(y.subarray(0, learnTicks));
     if (read.length < LEAST_READINGS) throw tooFew(series, c, read.length, learnTicks);
     const sorted = read.slice().sort();
     const scaling = scalingOf(read, sorted, steps[c]);
-    const later = y.subarray(learnTicks, clipTicks).filter((value) => Number.isFinite(value));
+    const later = finite(y.subarray(learnTicks, clipTicks));
     return later.length === 0 || scaling.isConstant ? scaling : withRoomFor(scaling, sorted, later.sort());
   });
   if (scalings.slice(0, series.signalCount).every((scaling) => scaling.isConstant)) {
@@ -53,6 +53,15 @@ export function findScalings(
     );
   }
   return scalings;
+}
+
+/** The finite ones, in a new array. */
+function finite(values: Float64Array): Float64Array {
+  const kept = new Float64Array(values.length);
+  let count = 0;
+  // 0 for a finite value alone.
+  for (let k = 0; k < values.length; k++) if (values[k] - values[k] === 0) kept[count++] = values[k];
+  return kept.subarray(0, count);
 }
 
 function scalingOf(read: Float64Array, sorted: Float64Array, step: number): Scaling {
