@@ -10,17 +10,6 @@ import type { FitResult } from './pipeline.ts';
 /** Names of the files, for help texts. */
 export const CANDIDATE_FILES = 'candidate.swc, report.html, hindcast.json, survey.json and factors.swf';
 
-/** Plots take a tenth of a second to load, which commands without a report need not wait for. */
-function reportPage(): Promise<typeof import('./report/page.ts')> {
-  return import('./report/page.ts');
-}
-
-/** Begins to load what the report needs, for whoever will wait for something else before it. */
-export function beginReport(): void {
-  // What fails here fails again, and is told, when the report is made.
-  reportPage().catch(() => {});
-}
-
 /** Candidate, report, hindcast and survey as files of a folder, made and not yet written. */
 export async function candidateFiles(
   folder: string,
@@ -28,7 +17,8 @@ export async function candidateFiles(
   survey: Survey,
   result: FitResult,
 ): Promise<readonly NewFile[]> {
-  const { fitReport } = await reportPage();
+  // Plots take half a second to load, which commands without a report need not wait for.
+  const { fitReport } = await import('./report/page.ts');
   const hindcast = `${JSON.stringify({ ...hindcastJson(result.hindcast), ...planWorthJson(result.planWorth) }, null, 2)}\n`;
   const report = fitReport({ site, survey, result });
   return [

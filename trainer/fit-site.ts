@@ -7,7 +7,7 @@ import { statSync } from 'node:fs';
 import { join } from 'node:path';
 import type { Site } from '@stillwell/protocol';
 import type { NewFile } from '@stillwell/runtime/files';
-import { beginReport, candidateFiles } from './candidate-files.ts';
+import { candidateFiles } from './candidate-files.ts';
 import { FACTORS_FILE, FactorsKeeper, factorsNotes } from './factors/keeper.ts';
 import type { FitOptions } from './fit-options.ts';
 import { findFiles } from './history/find-files.ts';
@@ -98,8 +98,6 @@ async function fitLoaded(
   const earlier = isBeside ? { earlierToCome: keeper.earlier() } : { earlier: older && (await keeper.earlier()) };
   const closing = isBeside ? keeper.close(series) : null;
   const judging = closing === null ? null : new JudgingBeside(closing);
-  // This thread will wait for the other in between.
-  if (isBeside) beginReport();
   const result = await fit(
     { series, site, survey, lattices, ...earlier },
     { ...options, progress: (name) => watch.step(name) },
