@@ -4,9 +4,10 @@
  */
 import { z } from 'zod';
 import { BUNDLE_KINDS, type BundleKind } from './bundle.ts';
+import { checked } from './checked-value.ts';
 import { parseDuration } from './duration.ts';
 import { deepFreeze } from './freeze.ts';
-import { listFaults, showValue } from './issue.ts';
+import { listFaults } from './issue.ts';
 import { nearestName } from './nearest.ts';
 import { readYamlFile, type YamlKind } from './yaml-file.ts';
 
@@ -46,15 +47,6 @@ const FLEET_FILE: YamlKind = {
   keys: 'sites',
   maxBytes: MAX_FLEET_FILE_BYTES,
 };
-
-const checked = <T>(expected: string | ((value: unknown) => string), read: (value: unknown) => T | undefined) =>
-  z.unknown().transform((value, context): T => {
-    const result = read(value);
-    if (result !== undefined) return result;
-    const wanted = typeof expected === 'string' ? expected : expected(value);
-    context.addIssue({ code: 'custom', message: `expected ${wanted}, got ${showValue(value ?? undefined)}` });
-    return z.NEVER;
-  });
 
 const isText = (value: unknown): value is string => typeof value === 'string' && value.trim() !== '';
 const text = (expected: string) => checked(expected, (value) => (isText(value) ? value : undefined));

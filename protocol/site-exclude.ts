@@ -3,9 +3,10 @@
  * site file's `exclude` says when, either by two times or by a signal that says so, and why. The gateway passes it over.
  */
 import { z } from 'zod';
+import { checked } from './checked-value.ts';
 import { formatDuration, parseDuration } from './duration.ts';
 import { formatInstant, parseInstant } from './instant.ts';
-import { type Fault, showValue } from './issue.ts';
+import type { Fault } from './issue.ts';
 import { nearestName } from './nearest.ts';
 
 /** What every entry says. */
@@ -35,14 +36,6 @@ export type Exclusion = ExcludedSpan | ExcludedWhile;
 const COMPARISONS = ['above', 'below', 'equals'] as const;
 /** Entries of one site file: one a week for twenty years. */
 const MOST_ENTRIES = 1024;
-
-const checked = <T>(expected: string, read: (value: unknown) => T | undefined) =>
-  z.unknown().transform((value, context): T => {
-    const result = read(value);
-    if (result !== undefined) return result;
-    context.addIssue({ code: 'custom', message: `expected ${expected}, got ${showValue(value ?? undefined)}` });
-    return z.NEVER;
-  });
 
 const isText = (value: unknown): value is string => typeof value === 'string' && value !== '';
 const text = checked('text', (value) => (isText(value) ? value : undefined));

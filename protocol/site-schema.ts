@@ -3,6 +3,7 @@
  * was got; where it stands is added by the parser, which has the lines.
  */
 import { z } from 'zod';
+import { checked } from './checked-value.ts';
 import { parseDuration } from './duration.ts';
 import { parseInstant } from './instant.ts';
 import { showValue } from './issue.ts';
@@ -13,16 +14,6 @@ import { isPointer } from './pointer.ts';
 import type { Aggregate, PayloadReading } from './site.ts';
 import { excludeEntrySchema, excludeSchema, whenSchema } from './site-exclude.ts';
 import { checkTopicFilter } from './topics.ts';
-
-/** A value read by hand, so that the refusal can say what would have been right. `read` gives undefined to refuse. */
-const checked = <T>(expected: string | ((value: unknown) => string), read: (value: unknown) => T | undefined) =>
-  z.unknown().transform((value, context): T => {
-    const result = read(value);
-    if (result !== undefined) return result;
-    const wanted = typeof expected === 'string' ? expected : expected(value);
-    context.addIssue({ code: 'custom', message: `expected ${wanted}, got ${showValue(value ?? undefined)}` });
-    return z.NEVER;
-  });
 
 const isText = (value: unknown): value is string => typeof value === 'string';
 const isNumber = (value: unknown): value is number => typeof value === 'number' && Number.isFinite(value);

@@ -23,7 +23,7 @@ interface RefitCommandOptions {
   readonly archive: string;
   readonly site: string;
   readonly history?: string[];
-  readonly factors?: string;
+  readonly factors?: string[];
   readonly previous?: string;
   readonly out: string;
   readonly timeZone?: string;
@@ -49,8 +49,9 @@ export function refitCommand(): Command {
     .requiredOption('--out <folder>', `folder for ${CANDIDATE_FILES}`)
     .option('--history <files...>', 'files of the first fit as well; the archive wins where both cover a tick', several)
     .option(
-      '--factors <file>',
-      'factors.swf of the last fit or refit, in place of history files: only newer segments are read',
+      '--factors <files...>',
+      'factors.swf of the last fit or refit, in place of history files: only newer segments are read; several of spans that follow each other are joined',
+      several,
     )
     .option('--previous <bundle>', 'bundle that serves: compared with, and named in the new one as its predecessor')
     .option('--time-zone <zone>', "zone of history times that carry none; the site's otherwise")
@@ -126,10 +127,10 @@ async function refitInto(options: RefitCommandOptions): Promise<void> {
 
 /** What was learned before, if it is of this site. */
 async function factorsOf(
-  { factors: path, history, halfLife }: RefitCommandOptions,
+  { factors: paths, history, halfLife }: RefitCommandOptions,
   site: Site,
 ): Promise<Factors | null> {
-  if (path === undefined) return null;
+  if (paths === undefined) return null;
   for (const [option, given] of [
     ['--history', history],
     ['--half-life', halfLife],
@@ -143,9 +144,13 @@ async function factorsOf(
     );
   }
   const { checkBelongs, readFactors } = await import('../factors/file.ts');
-  const factors = readFactors(path);
-  checkBelongs(factors, site, path);
-  return factors;
+  const { mergeFactors } = await import('../factors/merge.ts');
+  const spans = paths.map((path) => {
+    const factors = readFactors(path);
+    checkBelongs(factors, site, path);
+    return factors;
+  });
+  return spans.sort((a, b) => a.fromTick - b.fromTick).reduce((all, next) => mergeFactors(all, next));
 }
 
 async function readFiles(site: Site, options: RefitCommandOptions, span: TimeSpan): Promise<History | null> {

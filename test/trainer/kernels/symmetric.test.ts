@@ -3,6 +3,7 @@
  * with a double, a nearly equal, a zero and an opposite eigenvalue; exact values ±10√10405, 510 ± 100√26, 1000 (twice), 1020, 0.
  */
 import { describe, expect, test } from 'vitest';
+import { eigenErrors } from '../../support/eigen-errors.ts';
 import { bits, bothKernels, fill } from '../../support/kernel-modes.ts';
 
 const rosser = [
@@ -16,25 +17,6 @@ const rosser = [
   [29, -44, 52, -23, 208, 208, -911, 99],
 ];
 
-/** Largest entry of |Z' diag(d) Z − A| and of |Z Z' − I|. */
-function errors(z: Float64Array, d: Float64Array, a: Float64Array, n: number): [number, number] {
-  let made = 0;
-  let unit = 0;
-  for (let i = 0; i < n; i++) {
-    for (let j = 0; j < n; j++) {
-      let sum = -a[i * n + j];
-      let product = i === j ? -1 : 0;
-      for (let k = 0; k < n; k++) {
-        sum += z[k * n + i] * d[k] * z[k * n + j];
-        product += z[i * n + k] * z[j * n + k];
-      }
-      made = Math.max(made, Math.abs(sum));
-      unit = Math.max(unit, Math.abs(product));
-    }
-  }
-  return [made, unit];
-}
-
 describe('eigenvectors of a small symmetric matrix', () => {
   test("are those of Rosser's", () => {
     const entries = Float64Array.from(rosser.flat());
@@ -46,7 +28,7 @@ describe('eigenvectors of a small symmetric matrix', () => {
       z.set(entries);
       expect(kernels.symmetricEigen(z, 8, d)).toBe(true);
       for (const [k, value] of exact.entries()) expect(Math.abs(d[k] - value)).toBeLessThan(1e-11);
-      const [made, unit] = errors(z, d, entries, 8);
+      const [made, unit] = eigenErrors(z, d, entries, 8);
       expect(made).toBeLessThan(1e-11);
       expect(unit).toBeLessThan(1e-13);
     }
@@ -58,7 +40,7 @@ describe('eigenvectors of a small symmetric matrix', () => {
       for (let i = 0; i < n; i++) for (let j = 0; j < i; j++) z[j * n + i] = z[i * n + j];
       const entries = z.slice();
       expect(kernels.symmetricEigen(z, n, d)).toBe(true);
-      const [made, unit] = errors(z, d, entries, n);
+      const [made, unit] = eigenErrors(z, d, entries, n);
       expect(Math.max(made, unit)).toBeLessThan(1e-14 * (4 + n));
       for (let k = 1; k < n; k++) expect(d[k]).toBeLessThanOrEqual(d[k - 1]);
       return bits(z) + bits(d);

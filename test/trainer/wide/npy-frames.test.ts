@@ -3,8 +3,8 @@ import { mkdtempSync, rmSync, writeFileSync } from 'node:fs';
 import { tmpdir } from 'node:os';
 import { join } from 'node:path';
 import { afterAll, describe, expect, test } from 'vitest';
-import type { FrameSource } from '../../../trainer/wide/frames.ts';
 import { openNpyFrames } from '../../../trainer/wide/npy-frames.ts';
+import { readFrames } from '../../support/read-frames.ts';
 
 const folder = mkdtempSync(join(tmpdir(), 'npy-'));
 afterAll(() => rmSync(folder, { recursive: true }));
@@ -31,14 +31,6 @@ function file(
 const dictionary = (descr: string, shape: string, order = 'False'): string =>
   `{'descr': '${descr}', 'fortran_order': ${order}, 'shape': (${shape}), }`;
 
-async function read(source: FrameSource): Promise<number[][]> {
-  const frames: number[][] = [];
-  for await (const { count, values } of source.chunks())
-    for (let k = 0; k < count; k++)
-      frames.push([...values.subarray(k * source.frameLength, (k + 1) * source.frameLength)]);
-  return frames;
-}
-
 const bytesOf = (array: Float32Array | Float64Array | Int16Array | Uint16Array | BigInt64Array): Uint8Array =>
   new Uint8Array(array.buffer);
 
@@ -49,13 +41,13 @@ describe('numbers of every usual type', () => {
   ])('%s', async (descr, data) => {
     const source = await openNpyFrames(file('a.npy', dictionary(descr, '3, 2'), data));
     expect(source).toMatchObject({ frameLength: 2, count: 3, startMs: null, tickMs: null });
-    expect(await read(source)).toEqual([
+    expect(await readFrames(source)).toEqual([
       [1.5, -2],
       [3, 4],
       [5, 6],
     ]);
     // As often as wanted.
-    expect(await read(source)).toHaveLength(3);
+    expect(await readFrames(source)).toHaveLength(3);
   });
 
   test.each([
@@ -66,7 +58,7 @@ describe('numbers of every usual type', () => {
   ])('%s, frames of two axes', async (descr, data) => {
     const source = await openNpyFrames(file('b.npy', dictionary(descr, '2, 1, 2'), data), { startMs: 5, tickMs: 40 });
     expect(source).toMatchObject({ frameLength: 2, count: 2, startMs: 5, tickMs: 40 });
-    expect(await read(source)).toEqual([
+    expect(await readFrames(source)).toEqual([
       [0, 255],
       [7, 8],
     ]);
@@ -74,7 +66,7 @@ describe('numbers of every usual type', () => {
 
   test.each([1, 2, 3])('version %i of the format', async (major) => {
     const path = file('c.npy', dictionary('<f4', '2, 1'), bytesOf(Float32Array.of(8, 9)), { major });
-    expect(await read(await openNpyFrames(path))).toEqual([[8], [9]]);
+    expect(await readFrames(await openNpyFrames(path))).toEqual([[8], [9]]);
   });
 });
 
@@ -123,11 +115,11 @@ describe('what is refused', () => {
 
   test('what is no number, with its place', async () => {
     const path = file('n', dictionary('<f4', '3, 2'), bytesOf(Float32Array.of(1, 2, 3, Number.NaN, 5, 6)));
-    await expect(read(await openNpyFrames(path))).rejects.toThrow(
+    await expect(readFrames(await openNpyFrames(path))).rejects.toThrow(
       'expected numbers alone, got NaN at number 1 of frame 1 (from 0)',
     );
     const large = file('o', dictionary('<f8', '1, 1'), bytesOf(Float64Array.of(1e300)));
-    await expect(read(await openNpyFrames(large))).rejects.toThrow('got Infinity at number 0 of frame 0');
+    await expect(readFrames(await openNpyFrames(large))).rejects.toThrow('got Infinity at number 0 of frame 0');
   });
 
   test('a header that is longer than the file', async () => {

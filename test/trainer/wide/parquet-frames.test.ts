@@ -4,8 +4,8 @@ import { tmpdir } from 'node:os';
 import { join } from 'node:path';
 import { DuckDBInstance } from '@duckdb/node-api';
 import { afterAll, beforeAll, describe, expect, test } from 'vitest';
-import type { FrameSource } from '../../../trainer/wide/frames.ts';
 import { openParquetFrames } from '../../../trainer/wide/parquet-frames.ts';
+import { readFrames } from '../../support/read-frames.ts';
 
 const folder = mkdtempSync(join(tmpdir(), 'frames-'));
 let instance: DuckDBInstance;
@@ -25,14 +25,6 @@ async function written(select: string, options = ''): Promise<string> {
   return path;
 }
 
-async function read(source: FrameSource): Promise<number[][]> {
-  const frames: number[][] = [];
-  for await (const { count, values } of source.chunks())
-    for (let k = 0; k < count; k++)
-      frames.push([...values.subarray(k * source.frameLength, (k + 1) * source.frameLength)]);
-  return frames;
-}
-
 const START = "TIMESTAMP '2030-01-01 00:00:00'";
 
 describe('frames', () => {
@@ -43,7 +35,7 @@ describe('frames', () => {
     );
     const source = await openParquetFrames(path);
     expect(source).toMatchObject({ frameLength: 3, count: 5000, startMs: Date.UTC(2030, 0, 1), tickMs: 40 });
-    const frames = await read(source);
+    const frames = await readFrames(source);
     expect(frames).toEqual(Array.from({ length: 5000 }, (_, i) => [i, i + 0.5, 0 - i]));
   });
 
@@ -51,7 +43,7 @@ describe('frames', () => {
     const path = await written('SELECT i::INTEGER AS b2, (i / 4)::FLOAT AS b1 FROM range(3) r(i)');
     const source = await openParquetFrames(path, { startMs: 7, tickMs: 1000 });
     expect(source).toMatchObject({ frameLength: 2, count: 3, startMs: 7, tickMs: 1000 });
-    expect(await read(source)).toEqual([
+    expect(await readFrames(source)).toEqual([
       [0, 0],
       [1, 0.25],
       [2, 0.5],
@@ -59,7 +51,7 @@ describe('frames', () => {
   });
 
   test('out of fixed-size arrays', async () => {
-    expect(await read(await openParquetFrames(await written('SELECT [1, 2]::FLOAT[2] AS v')))).toEqual([[1, 2]]);
+    expect(await readFrames(await openParquetFrames(await written('SELECT [1, 2]::FLOAT[2] AS v')))).toEqual([[1, 2]]);
   });
 });
 
@@ -97,7 +89,7 @@ describe('what is refused', () => {
     ['times out of order', `SELECT ${START} + to_milliseconds(-40 * i) AS t, 1.0 AS a FROM range(10) r(i)`, 'in order'],
   ])('%s', async (_, select, message) => {
     const path = await written(select);
-    await expect(openParquetFrames(path).then(read)).rejects.toThrow(message);
+    await expect(openParquetFrames(path).then(readFrames)).rejects.toThrow(message);
   });
 
   test('row groups that would not fit', async () => {

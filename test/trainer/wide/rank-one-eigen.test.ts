@@ -3,25 +3,7 @@ import { describe, expect, it } from 'vitest';
 import { symmetricEigen } from '../../../trainer/linalg/eigen.ts';
 import { openRandom } from '../../../trainer/wide/random.ts';
 import { RankOneEigen } from '../../../trainer/wide/rank-one-eigen.ts';
-
-/** Largest entry of |Z' diag(d) Z − A| and of |Z Z' − I|. */
-function errors(z: Float64Array, d: Float64Array, a: Float64Array, n: number): [number, number] {
-  let made = 0;
-  let unit = 0;
-  for (let i = 0; i < n; i++) {
-    for (let j = 0; j < n; j++) {
-      let sum = -a[i * n + j];
-      let product = i === j ? -1 : 0;
-      for (let k = 0; k < n; k++) {
-        sum += z[k * n + i] * d[k] * z[k * n + j];
-        product += z[i * n + k] * z[j * n + k];
-      }
-      made = Math.max(made, Math.abs(sum));
-      unit = Math.max(unit, Math.abs(product));
-    }
-  }
-  return [made, unit];
-}
+import { eigenErrors } from '../../support/eigen-errors.ts';
 
 describe('a diagonal and one outer product', () => {
   it.each([
@@ -43,7 +25,7 @@ describe('a diagonal and one outer product', () => {
       for (let i = 0; i < n; i++) for (let j = 0; j < n; j++) a[i * n + j] = z[i] * z[j] + (i === j ? d[i] : 0);
       const own = new RankOneEigen(n);
       own.solve(d, z, n);
-      const [made, unit] = errors(own.vectors, own.values, a, n);
+      const [made, unit] = eigenErrors(own.vectors, own.values, a, n);
       const size = Math.max(1e-3, d[0], ...a.map(Math.abs));
       expect(made).toBeLessThan(1e-13 * size);
       expect(unit).toBeLessThan(1e-13);
