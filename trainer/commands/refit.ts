@@ -144,13 +144,13 @@ async function factorsOf(
     );
   }
   const { checkBelongs, readFactors } = await import('../factors/file.ts');
-  const { mergeFactors } = await import('../factors/merge.ts');
+  const { joinFactors } = await import('../factors/merge.ts');
   const spans = paths.map((path) => {
     const factors = readFactors(path);
     checkBelongs(factors, site, path);
     return factors;
   });
-  return spans.sort((a, b) => a.fromTick - b.fromTick).reduce((all, next) => mergeFactors(all, next));
+  return joinFactors(spans);
 }
 
 async function readFiles(site: Site, options: RefitCommandOptions, span: TimeSpan): Promise<History | null> {

@@ -139,3 +139,16 @@ export function forget(factors: Factors, ticks: number): Factors {
   const rungOut = addRungOut(factors.rungOut, factor, null);
   return Object.freeze({ ...factors, sums: sums.copy(), ends, rungOut });
 }
+
+/**
+ * Factors of several spans made one, in whatever order they are given.
+ *
+ * shapes  at least one
+ * units   raw
+ * throws  as `mergeFactors`
+ * source  as `mergeFactors`
+ * cost    as `mergeFactors`, a span
+ */
+export function joinFactors(spans: readonly Factors[]): Factors {
+  return spans.toSorted((a, b) => a.fromTick - b.fromTick).reduce((all, next) => mergeFactors(all, next));
+}

@@ -2,7 +2,7 @@
 import { describe, expect, it } from 'vitest';
 import type { Factors } from '../../../trainer/factors/factors.ts';
 import { FactorsGatherer } from '../../../trainer/factors/gather.ts';
-import { forget, mergeFactors } from '../../../trainer/factors/merge.ts';
+import { forget, joinFactors, mergeFactors } from '../../../trainer/factors/merge.ts';
 import { momentsFromFactors } from '../../../trainer/factors/moments.ts';
 import type { Moments } from '../../../trainer/identify/moments.ts';
 import {
@@ -89,4 +89,19 @@ describe('forget', () => {
     const factors = span(0, 2000);
     expect(forget(factors, 500)).toBe(factors);
   });
+});
+
+it('joins spans in whatever order they are given', () => {
+  const part = (from: number, to: number): Factors => {
+    const gatherer = new FactorsGatherer(shape);
+    gatherer.take(
+      seriesOf(
+        values.map((y) => y.slice(from, to)),
+        from,
+      ),
+    );
+    return gatherer.end();
+  };
+  const [a, b, c] = [part(0, 600), part(600, 1300), part(1300, 2000)];
+  expect(joinFactors([c, a, b])).toEqual(mergeFactors(mergeFactors(a, b), c));
 });
