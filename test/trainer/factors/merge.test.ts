@@ -94,12 +94,7 @@ describe('forget', () => {
 it('joins spans in whatever order they are given', () => {
   const part = (from: number, to: number): Factors => {
     const gatherer = new FactorsGatherer(shape);
-    gatherer.take(
-      seriesOf(
-        values.map((y) => y.slice(from, to)),
-        from,
-      ),
-    );
+    gatherer.take(seriesOf(values, from, to));
     return gatherer.end();
   };
   const [a, b, c] = [part(0, 600), part(600, 1300), part(1300, 2000)];
