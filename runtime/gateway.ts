@@ -2,9 +2,9 @@
  * The gateway: engine, broker, slots and spool wired together. One thread, one loop: messages come in, ticks close,
  * forecasts go out, then the disk is tended. Nothing that comes from outside can throw out of here.
  */
-import { join } from 'node:path';
-import { type BundleChange, type HealthStatus, parseReceiptMessage, toHex, topicsOf } from '@stillwell/protocol';
+import { type HealthStatus, topicsOf } from '@stillwell/protocol';
 import { BundleKeeper } from './bundle/change.ts';
+import { BundleIntake } from './bundle/intake.ts';
 import type { GatewayConfig } from './config.ts';
 import { Engine } from './engine.ts';
 import { type Connection, type ConnectionEvent, openConnection } from './mqtt/connection.ts';
@@ -12,6 +12,7 @@ import { dispatch, filtersOf } from './mqtt/subscriptions.ts';
 import type { GatewayPorts } from './ports.ts';
 import { Publisher } from './publish/publisher.ts';
 import { GroupSync } from './residuals/group-sync.ts';
+import { takeReceipt } from './residuals/receipts.ts';
 import { Shipper } from './residuals/ship.ts';
 
 /** A wall clock before 2020 was never set: only the readings' own times can then be believed. */
@@ -31,25 +32,18 @@ const SESSION_EXPIRY_SECONDS = 3600;
 /** For a message that must come again. */
 const NEVER = new Promise<void>(() => {});
 
-/** A bundle file put here is taken in, checked, and removed. */
-export function incomingPath(folder: string): string {
-  return join(folder, 'incoming.swb');
-}
-
 /** A running gateway; see the file head. */
 export class Gateway {
   readonly engine: Engine;
   readonly #config: GatewayConfig;
   readonly #ports: GatewayPorts;
-  readonly #keeper: BundleKeeper;
+  readonly #intake: BundleIntake;
   readonly #topics: ReturnType<typeof topicsOf>;
   readonly #shipper: Shipper;
   readonly #groupSync: GroupSync;
   readonly #connection: Connection;
   readonly #publisher: Publisher;
   #status: HealthStatus = 'starting';
-  #lastChange: BundleChange | null = null;
-  #refusedBundle = '';
   #cancelPulse: () => void = () => {};
   #isPublishDue = false;
   #holdUntil: number;
@@ -65,8 +59,8 @@ export class Gateway {
     this.#config = config;
     this.#ports = ports;
     this.#topics = topicsOf(site.root, site.site);
-    this.#keeper = new BundleKeeper(disk, data, site, config.trusted);
-    for (const fault of this.#keeper.faults) log.warn(`bundle on disk not usable: ${fault}`);
+    const keeper = new BundleKeeper(disk, data, site, config.trusted);
+    for (const fault of keeper.faults) log.warn(`bundle on disk not usable: ${fault}`);
     this.engine = new Engine(
       {
         site,
@@ -78,8 +72,15 @@ export class Gateway {
         ...(ports.stream ? { stream: ports.stream } : {}),
         note: (level, text) => log[level](text),
       },
-      this.#keeper,
+      keeper,
     );
+    this.#intake = new BundleIntake({
+      keeper,
+      engine: this.engine,
+      ports,
+      folder: data,
+      onChange: () => this.#onBundleChange(),
+    });
     this.#holdUntil = clock.monotonic() + SETTLE_AT_MOST_MS;
     this.#groupSync = new GroupSync({ clock, sync: async () => this.engine.journal?.syncSoon() });
     this.#connection = this.#connect();
@@ -109,47 +110,7 @@ export class Gateway {
 
   /** Checks a sealed bundle and, if it holds, puts it to work at this tick boundary; the outcome as one sentence. */
   offerBundle(sealed: Uint8Array, from: string): string {
-    const { log, clock } = this.#ports;
-    const before = this.engine.serving?.checked ?? null;
-    const offered = this.#keeper.offer(sealed, before);
-    if (offered.outcome === 'known') return 'this bundle is known already';
-    const was = before === null ? null : toHex(before.digest);
-    if (offered.outcome === 'refused') {
-      const text = `bundle ${from} refused (${offered.code}): ${offered.reason}`;
-      // A retained bundle comes again on every connect; one word about it is enough.
-      if (text === this.#refusedBundle) return text;
-      this.#refusedBundle = text;
-      log.warn(text);
-      const reason = `${offered.code}: ${offered.reason}`;
-      this.#lastChange = { atMs: clock.wall(), from: was, to: null, outcome: 'refused', reason };
-      this.#sayHealth();
-      return text;
-    }
-    const { checked, isSameDocument } = offered;
-    if (isSameDocument) this.engine.restamp(checked);
-    else this.engine.install(checked);
-    this.#guardDisk('pointer', () => this.#keeper.serves(checked));
-    this.#release();
-    const to = toHex(checked.digest);
-    const outcome = isSameDocument ? 'renewed' : 'changed';
-    this.#lastChange = { atMs: clock.wall(), from: was, to, outcome, reason: null };
-    this.#setStatus();
-    this.#sayHealth();
-    const text = `bundle ${from} ${outcome}: ${to.slice(0, 16)}…, sequence ${checked.sequence}`;
-    log.info(text);
-    return text;
-  }
-
-  /** Takes a bundle left in the data folder. */
-  takeIncoming(): void {
-    const { disk } = this.#ports;
-    const path = incomingPath(this.#config.data);
-    this.#guardDisk('incoming bundle', () => {
-      if (disk.size(path) === 0) return;
-      const sealed = disk.read(path);
-      if (sealed !== null) this.offerBundle(sealed, 'from the data folder');
-      disk.remove(path);
-    });
+    return this.#intake.offer(sealed, from);
   }
 
   /** Flushes, syncs, says 'stopped' and leaves. Takes no more than two seconds. */
@@ -189,6 +150,12 @@ export class Gateway {
     });
   }
 
+  #onBundleChange(): void {
+    this.#release();
+    this.#setStatus();
+    this.#sayHealth();
+  }
+
   #onConnection(event: ConnectionEvent): void {
     const { log, clock } = this.#ports;
     if (event.kind === 'connected') {
@@ -214,8 +181,8 @@ export class Gateway {
       dispatch(
         this.#topics,
         {
-          bundle: (sealed) => void this.offerBundle(sealed, 'from the broker'),
-          receipt: (bytes) => this.#receipt(bytes),
+          bundle: (sealed) => void this.#intake.offer(sealed, 'from the broker'),
+          receipt: (bytes) => takeReceipt(bytes, this.#config.gateway, this.#shipper, this.#ports.log),
           reading: (from, bytes) => {
             this.#plan(from, bytes);
             this.#reading(from, bytes);
@@ -258,23 +225,6 @@ export class Gateway {
     return Number.isFinite(newestMs) ? newestMs : null;
   }
 
-  #receipt(payload: Uint8Array): void {
-    const { log } = this.#ports;
-    let receipt: ReturnType<typeof parseReceiptMessage>;
-    try {
-      receipt = parseReceiptMessage(payload);
-    } catch (error) {
-      log.warn(`receipt not readable: ${(error as Error).message}`);
-      return;
-    }
-    if (receipt.gateway !== this.#config.gateway) return;
-    const stream = toHex(receipt.stream);
-    for (const { number, hash } of receipt.segments)
-      if (this.#shipper.receipt(stream, number, hash) === 'conflict')
-        log.error(`segment ${number}: the desk holds other bytes under this number; it is kept aside here`);
-    this.#shipper.poke();
-  }
-
   /** The loop: what is due now, then sleep until the next tick closes. */
   #pulse(): void {
     const { clock } = this.#ports;
@@ -283,7 +233,7 @@ export class Gateway {
     if (this.engine.journal?.isDirty && this.#groupSync.ageMs >= SYNC_MS) this.#groupSync.now();
     if (now - this.#lookedAt >= LOOK_MS) {
       this.#lookedAt = now;
-      this.takeIncoming();
+      this.#intake.takeIncoming();
     }
     const isRetry = now - this.#retriedAt >= RETRY_DISK_MS;
     if (isRetry) this.#retriedAt = now;
@@ -363,14 +313,11 @@ export class Gateway {
   }
 
   #report(): Parameters<Publisher['health']>[0] {
-    return { status: this.#status, lastChange: this.#lastChange, engine: this.engine, ship: this.#shipper.counts };
-  }
-
-  #guardDisk(what: string, work: () => void): void {
-    try {
-      work();
-    } catch (error) {
-      this.#ports.log.error(`${what}: ${(error as Error).message}`);
-    }
+    return {
+      status: this.#status,
+      lastChange: this.#intake.lastChange,
+      engine: this.engine,
+      ship: this.#shipper.counts,
+    };
   }
 }

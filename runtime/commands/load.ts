@@ -2,11 +2,11 @@
 import { toHex } from '@stillwell/protocol';
 import { Command } from 'commander';
 import { BundleKeeper } from '../bundle/change.ts';
+import { incomingPath } from '../bundle/intake.ts';
 import { checkNamed } from '../bundle/load.ts';
 import { makeDataFolder, readGiven, readSite, readTrust } from '../config.ts';
 import { nodeDisk, replaceOn } from '../disk.ts';
 import { RuntimeError } from '../errors.ts';
-import { incomingPath } from '../gateway.ts';
 import { lockHolder, takeLock } from '../lock.ts';
 import { siteOptions } from './options.ts';
 
