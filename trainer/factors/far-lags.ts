@@ -2,7 +2,8 @@
  * Lags beyond a few ten thousand ticks, from changes thinned to every eighth tick. What a bank asks of such lags is smooth, a
  * pole's powers, so its value between the thinned ticks follows from those around by interpolation: Σ G(t - s) D(t) D(s) over all
  * ticks equals Σ G(8T - 8S) D'(T) D'(S), with D'(T) = Σ k(t - 8T) D(t) and k the interpolation's kernel. The memory that lags
- * take is then an eighth, and so is the work.
+ * take is then an eighth, and so is the work. Weights by age are as smooth as G, and are interpolated along with it: a thinned
+ * tick weighs what its own age says.
  *
  * G must not begin with a step. So lags are shared out: those up to 16,384 are near ones, those from 24,576 on far ones, and in
  * between a lag counts in part as either, by a logistic step so flat at both ends that nothing is seen of them.
@@ -175,15 +176,19 @@ export class FarLags {
     for (; this.#next <= last; this.#next++) {
       if (this.#fresh === this.#blockTicks) this.#sumUp();
       if (this.#filled === this.#earlier[0].length) this.#makeRoom();
+      const weight = this.#weightOf(run.ticks - 1 - THIN * this.#next);
       for (let c = 0; c < this.#channels; c++) {
-        this.#earlier[c][this.#filled] = thinned(run, c, this.#next, null);
-        if (this.#halfLifeTicks !== null) {
-          this.#later[c][this.#filled] = thinned(run, c, this.#next, this.#halfLifeTicks);
-        }
+        const value = thinned(run, c, this.#next);
+        this.#earlier[c][this.#filled] = value;
+        this.#later[c][this.#filled] = weight * value;
       }
       this.#filled++;
       this.#fresh++;
     }
+  }
+
+  #weightOf(age: number): number {
+    return this.#halfLifeTicks === null ? 1 : 2 ** (-age / this.#halfLifeTicks);
   }
 
   #makeRoom(): void {
@@ -203,22 +208,14 @@ export class FarLags {
   }
 }
 
-/** Σ k(t - 8T) D(t), each D weighted by its age where there is a half-life. */
-function thinned(run: RunRows, c: number, at: number, halfLifeTicks: number | null): number {
+/** Σ k(t - 8T) D(t). */
+function thinned(run: RunRows, c: number, at: number): number {
   const row = run.changes[c];
   // Place of the thinned tick itself; before a run's first tick and after its last nothing changes.
   const centre = run.filled - run.ticks + THIN * at;
-  const first = Math.max(0, run.filled - run.ticks);
-  const end = run.filled;
-  const from = Math.max(first, centre - THIN * SIDE + 1);
-  const to = Math.min(end, centre + THIN * SIDE);
+  const from = Math.max(0, run.filled - run.ticks, centre - THIN * SIDE + 1);
+  const to = Math.min(run.filled, centre + THIN * SIDE);
   let sum = 0;
-  if (halfLifeTicks !== null) {
-    const middle = 2 ** (-(end - 1 - centre) / halfLifeTicks);
-    const kernel = weightedKernel(halfLifeTicks);
-    for (let p = from; p < to; p++) sum += kernel[p - centre + THIN * SIDE] * row[p];
-    return middle * sum;
-  }
   if (to - from < 2 * THIN * SIDE - 1) {
     for (let p = from; p < to; p++) sum += KERNEL[Math.abs(p - centre)] * row[p];
     return sum;
@@ -231,22 +228,6 @@ function thinned(run: RunRows, c: number, at: number, halfLifeTicks: number | nu
   }
   const last = THIN * SIDE - 1;
   return sum + odd + KERNEL[last] * (row[centre + last] + row[centre - last]);
-}
-
-const weightedKernels = new Map<number, Float64Array>();
-
-/** (2 · 8 · 12) the kernel from its first tick on, each tick weighted against the middle one. */
-function weightedKernel(halfLifeTicks: number): Float64Array {
-  let kernel = weightedKernels.get(halfLifeTicks);
-  if (kernel === undefined) {
-    const length = THIN * SIDE;
-    kernel = Float64Array.from({ length: 2 * length }, (_, at) => {
-      const x = at - length;
-      return x === -length ? 0 : KERNEL[Math.abs(x)] * 2 ** (x / halfLifeTicks);
-    });
-    weightedKernels.set(halfLifeTicks, kernel);
-  }
-  return kernel;
 }
 
 /** (8 · 12) the kernel at whole ticks from its middle. */

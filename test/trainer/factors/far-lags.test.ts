@@ -3,7 +3,7 @@ import { describe, expect, it } from 'vitest';
 import type { Factors, FactorsShape } from '../../../trainer/factors/factors.ts';
 import { encodeFactors } from '../../../trainer/factors/file.ts';
 import { FactorsGatherer } from '../../../trainer/factors/gather.ts';
-import { momentsFromFactors } from '../../../trainer/factors/moments.ts';
+import { gridOf, momentsFromFactors } from '../../../trainer/factors/moments.ts';
 import { gatherMoments, type Moments } from '../../../trainer/identify/moments.ts';
 import { expectAlike, scalings, shape } from '../../support/factors-history.ts';
 import { recurrence } from '../../support/sample-bundle.ts';
@@ -73,6 +73,19 @@ function momentsOf(factors: Factors): Moments {
   return momentsFromFactors(factors, { bank, horizon, scalings: [scalings[0]!], signalCount: 1, round: null });
 }
 
+/** Σ 2^(-age / half-life) D(t) D(t - lag) r^lag cos(angle · lag) over all lags, the inner sum carried from tick to tick. */
+function weightedWave(halfLifeTicks: number, radius: number, angle: number): number {
+  const newest = ticks - 2;
+  const [re, im] = [radius * Math.cos(angle), radius * Math.sin(angle)];
+  let [x, y, sum] = [0, 0, 0];
+  for (let t = 1; t <= newest; t++) {
+    const change = values[t]! - values[t - 1]!;
+    [x, y] = [re * x - im * y + change, im * x + re * y];
+    sum += 2 ** (-(newest - t) / halfLifeTicks) * change * x;
+  }
+  return sum;
+}
+
 describe('far lags', () => {
   const whole = momentsOf(gatherIn(ticks).end());
 
@@ -101,6 +114,25 @@ describe('far lags', () => {
     const scale = Math.abs(plain![0]!);
     const off = looked!.map((sum, place) => Math.abs(sum - plain![place]!) / scale);
     expect(Math.max(...off)).toBeLessThan(1e-11);
+  });
+
+  it.each([6144, 40_000])('weigh ticks by their age: sums over the readings, half-life %i', (halfLifeTicks) => {
+    const factors = gatherIn(16_384, halfLifeTicks).end();
+    const { lags } = gridOf(factors);
+    // Waves that do not fade, so that far lags count as much as near ones, and one that does.
+    for (const [radius, angle] of [
+      [1, 0],
+      [1, (12 * Math.PI) / day],
+      [Math.exp(-1 / 10_080), (2 * Math.PI) / day],
+    ] as const) {
+      let sum = 0;
+      lags.forEach((lag, place) => {
+        sum += factors.sums.lagged[place]! * radius ** lag * Math.cos(angle * lag);
+      });
+      const slow = weightedWave(halfLifeTicks, radius, angle);
+      // As much as the kernel lets through; weights one tick off show as more than that.
+      expect(Math.abs(sum / slow - 1), `${radius} ${angle}`).toBeLessThan(1e-6);
+    }
   });
 
   it.each([null, 40_000])('go on from a snapshot, half-life %s', (halfLifeTicks) => {
