@@ -12,13 +12,14 @@ import type { Readable } from 'node:stream';
 import { createGunzip } from 'node:zlib';
 import { TrainError } from '../errors.ts';
 import { digestOfFile } from './file-digest.ts';
-import { refusal } from './refusal.ts';
+import { refusal, unreadable } from './refusal.ts';
 import { unpackedLines } from './zstd.ts';
 
 const BLOCK_BYTES = 1 << 20;
 /** No logger writes longer lines; a binary file often has none at all. */
 const MAX_LINE_BYTES = 1 << 20;
 const NEWLINE = 10;
+const WANTED = 'a history file';
 
 /** What is known of a file before it is read. */
 export interface InputFile {
@@ -31,21 +32,6 @@ export interface InputFile {
 /** What reading it through told. */
 export interface FileDigest {
   readonly sha256: string;
-}
-
-function systemReason(path: string, cause: unknown): TrainError {
-  const code = (cause as NodeJS.ErrnoException).code;
-  if (code === 'ENOENT')
-    return new TrainError(
-      'file',
-      `${path}: expected a history file, got nothing: there is no such file; check the path`,
-      { cause },
-    );
-  if (code === 'EACCES' || code === 'EPERM')
-    return new TrainError('file', `${path}: may not be read; check the file's permissions`, { cause });
-  return new TrainError('file', `${path}: cannot be read (${code ?? String(cause)}); check the path and the disk`, {
-    cause,
-  });
 }
 
 /**
@@ -69,7 +55,7 @@ export function inspectFile(path: string): InputFile {
     }
   } catch (cause) {
     if (cause instanceof TrainError) throw cause;
-    throw systemReason(path, cause);
+    throw unreadable(path, WANTED, cause);
   }
   if (bytes === 0)
     throw new TrainError('file', `${path}: expected a header line and readings, got an empty file; export it again`);
@@ -209,7 +195,7 @@ export async function* readBlocks(
         'copy or export it again',
         { cause },
       );
-    throw systemReason(file.path, cause);
+    throw unreadable(file.path, WANTED, cause);
   } finally {
     close();
   }

@@ -1,5 +1,5 @@
 /**
- * The one wording of refusals about history files: where, expected, got, what to do.
+ * The one wording of refusals about files that are read: where, expected, got, what to do.
  */
 import { TrainError } from '../errors.ts';
 
@@ -33,4 +33,14 @@ export function refusal(
     details: { ...place, expected, got },
     ...options,
   });
+}
+
+/** The refusal of a file that the system does not give, `what` it was to be; from the system's error. */
+export function unreadable(path: string, what: string, cause: unknown): TrainError {
+  const code = (cause as NodeJS.ErrnoException).code;
+  const refuse = (words: string): TrainError => new TrainError('file', `${path}: ${words}`, { cause });
+  if (code === 'ENOENT') return refuse(`expected ${what}, got nothing: there is no such file; check the path`);
+  if (code === 'EISDIR') return refuse(`expected ${what}, got a folder; name the files in it`);
+  if (code === 'EACCES' || code === 'EPERM') return refuse("may not be read; check the file's permissions");
+  return refuse(`cannot be read (${code ?? String(cause)}); check the path and the disk`);
 }

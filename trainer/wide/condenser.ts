@@ -13,6 +13,7 @@
 import { createHash } from 'node:crypto';
 import { readFileSync } from 'node:fs';
 import { TrainError } from '../errors.ts';
+import { unreadable } from '../history/refusal.ts';
 
 /** What a condenser is of. */
 export interface CondenserShape {
@@ -147,13 +148,12 @@ export function decodeCondenser(bytes: Buffer, path: string): Condenser {
 
 /** From its place; throws as `decodeCondenser`, and 'file' where it cannot be read. */
 export function readCondenser(path: string): Condenser {
+  if (path === '') throw new TrainError('file', '--with: expected a path, got an empty one');
   let bytes: Buffer;
   try {
     bytes = readFileSync(path);
   } catch (cause) {
-    throw new TrainError('file', `${path}: expected a file that can be read, got ${(cause as Error).message}`, {
-      cause,
-    });
+    throw unreadable(path, 'a condenser file', cause);
   }
   return decodeCondenser(bytes, path);
 }

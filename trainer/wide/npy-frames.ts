@@ -3,11 +3,11 @@
  * length takes the same memory.
  */
 import { type FileHandle, open } from 'node:fs/promises';
-import { TrainError } from '../errors.ts';
-import { refusal } from '../history/refusal.ts';
+import { refusal, unreadable } from '../history/refusal.ts';
 import { checkFinite } from './finite-frames.ts';
 import type { FrameChunk, FrameSource, FrameTimes } from './frames.ts';
 import { HEADER_READ, type NpyHeader, readNpyHeader } from './npy-header.ts';
+import { inspectRecording, RECORDING } from './recording-file.ts';
 
 /** Bytes of numbers in a chunk; at least one frame. */
 const CHUNK_BYTES = 4 << 20;
@@ -17,6 +17,7 @@ const CHUNK_BYTES = 4 << 20;
  * number.
  */
 export async function openNpyFrames(path: string, times: FrameTimes = {}): Promise<FrameSource> {
+  const { bytes: size } = inspectRecording(path);
   return await withFile(path, async (file) => {
     const start = Buffer.alloc(HEADER_READ);
     const { bytesRead } = await file.read(start, 0, HEADER_READ, 0);
@@ -28,10 +29,9 @@ export async function openNpyFrames(path: string, times: FrameTimes = {}): Promi
         { file: path },
         'frames along the first of two axes or more',
         `an array of shape (${header.shape.join(', ')})`,
-        'save frames one after the other',
+        'save an array of shape (frames, numbers)',
       );
     const expected = header.dataAt + count * frameLength * header.type.bytes;
-    const { size } = await file.stat();
     if (size !== expected)
       throw refusal(
         { file: path },
@@ -91,9 +91,7 @@ async function opened(path: string): Promise<FileHandle> {
   try {
     return await open(path, 'r');
   } catch (cause) {
-    throw new TrainError('file', `${path}: expected a file that can be read, got ${(cause as Error).message}`, {
-      cause,
-    });
+    throw unreadable(path, RECORDING, cause);
   }
 }
 

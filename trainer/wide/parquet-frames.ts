@@ -5,12 +5,12 @@
  * DuckDB hands on up to 2,048 rows of a row group at once, so that a row group of long frames has to fit in memory; where it
  * does not, that is said before anything is read.
  */
-import { existsSync } from 'node:fs';
 import type { DuckDBConnection, DuckDBDataChunk, DuckDBFloatVector, DuckDBListVector } from '@duckdb/node-api';
 import { TrainError } from '../errors.ts';
 import { refusal, shown } from '../history/refusal.ts';
 import { checkFinite } from './finite-frames.ts';
 import type { FrameChunk, FrameSource, FrameTimes } from './frames.ts';
+import { inspectRecording } from './recording-file.ts';
 
 /** Rows DuckDB hands on at once, at most. */
 const VECTOR_ROWS = 2048;
@@ -18,6 +18,7 @@ const VECTOR_ROWS = 2048;
 const MOST_BYTES = 64 << 20;
 /** Bytes of frames handed on at once; at least one frame. */
 const CHUNK_BYTES = 4 << 20;
+const MAGIC = 'PAR1';
 const NUMBERS = /^(U?(TINY|SMALL|BIG)INT|U?INTEGER|FLOAT|DOUBLE|DECIMAL.*)$/;
 const LISTS = /^(U?(TINY|SMALL|BIG)INT|U?INTEGER|FLOAT|DOUBLE|DECIMAL[^[]*)\[\d*\]$/;
 
@@ -39,8 +40,7 @@ export async function openParquetFrames(
   times: FrameTimes = {},
   mostBytes = MOST_BYTES,
 ): Promise<FrameSource> {
-  if (!existsSync(path))
-    throw new TrainError('file', `${path}: expected a file that can be read, got none by that name`);
+  checkEdges(path);
   return await asked(path, async (connection) => {
     const columns = await columnsOf(connection, path);
     const [count, rows] = (await one(
@@ -66,15 +66,23 @@ export async function openParquetFrames(
       count: Number(count),
       startMs: taken?.startMs ?? times.startMs ?? null,
       tickMs: taken?.tickMs ?? times.tickMs ?? null,
-      chunks: () => readChunks(path, columns, frameLength),
+      chunks: () => readChunks(path, columns, frameLength, Number(count)),
     };
   });
+}
+
+/** A Parquet file begins and ends with the same four letters (format specification, "File format"). */
+function checkEdges(path: string): void {
+  const { bytes, begins, ends } = inspectRecording(path);
+  if (begins !== MAGIC) throw refusal({ file: path }, 'a Parquet file', 'another kind of file', 'check the path');
+  if (ends !== MAGIC || bytes < 12)
+    throw refusal({ file: path }, 'a whole Parquet file', 'one without its end', 'it was cut short: fetch it again');
 }
 
 async function columnsOf(connection: DuckDBConnection, path: string): Promise<Columns> {
   const reader = await connection.runAndReadAll(
     'SELECT column_name, column_type FROM (DESCRIBE SELECT * FROM read_parquet($1))',
-    [path],
+    [thisFile(path)],
   );
   const all = reader.getRows() as [string, string][];
   const named = (kind: RegExp): string[] => all.filter(([, type]) => kind.test(type)).map(([name]) => name);
@@ -127,8 +135,12 @@ async function timesOf(
   return { startMs: start, tickMs };
 }
 
-async function* readChunks(path: string, columns: Columns, frameLength: number): AsyncGenerator<FrameChunk> {
-  const { list, bins } = columns;
+async function* readChunks(
+  path: string,
+  { list, bins }: Columns,
+  frameLength: number,
+  count: number,
+): AsyncGenerator<FrameChunk> {
   const none = '[]::FLOAT[]';
   const wanted =
     list === null ? bins.map((name) => `${quoted(name)}::FLOAT`) : [`coalesce(${quoted(list)}::FLOAT[], ${none})`];
@@ -137,10 +149,11 @@ async function* readChunks(path: string, columns: Columns, frameLength: number):
   const instance = await openDatabase();
   const connection = await instance.connect();
   try {
-    const result = await connection.stream(`SELECT ${wanted.join(', ')} FROM read_parquet($1)`, [path]);
-    for (let frame = 0; ; ) {
+    const result = await connection.stream(`SELECT ${wanted.join(', ')} FROM read_parquet($1)`, [thisFile(path)]);
+    let frame = 0;
+    for (;;) {
       const chunk = await result.fetchChunk();
-      if (chunk === null || chunk.rowCount === 0) return;
+      if (chunk === null || chunk.rowCount === 0) break;
       for (let row = 0; row < chunk.rowCount; row += most) {
         const rows: Rows = { chunk, row, count: Math.min(most, chunk.rowCount - row), first: frame };
         if (list === null) takeBins(path, bins, rows, values);
@@ -150,12 +163,33 @@ async function* readChunks(path: string, columns: Columns, frameLength: number):
       }
       frame += chunk.rowCount;
     }
+    if (frame < count) throw await whyShort(connection, path, wanted, frame);
   } catch (cause) {
     throw asRefusal(path, cause);
   } finally {
     connection.closeSync();
     instance.closeSync();
   }
+}
+
+/** A stream that fails far from its beginning ends without a word: asked outright for the rest, it says why. */
+async function whyShort(
+  connection: DuckDBConnection,
+  path: string,
+  wanted: readonly string[],
+  frame: number,
+): Promise<unknown> {
+  const largest = wanted.map((one) => `max(${one})`).join(', ');
+  try {
+    await one(
+      connection,
+      `SELECT ${largest} FROM read_parquet($1, file_row_number = true) WHERE file_row_number >= ${frame}`,
+      path,
+    );
+  } catch (cause) {
+    return cause;
+  }
+  return refusal({ file: path }, 'a file that stays as it was opened', 'its end', 'read it when it is complete');
 }
 
 /** Some rows of a chunk, `first` the frame that the chunk begins with. */
@@ -228,15 +262,25 @@ async function asked<T>(path: string, work: (connection: DuckDBConnection) => Pr
 }
 
 async function one(connection: DuckDBConnection, sql: string, path: string): Promise<unknown[]> {
-  return (await connection.runAndReadAll(sql, [path])).getRows()[0] as unknown[];
+  return (await connection.runAndReadAll(sql, [thisFile(path)])).getRows()[0] as unknown[];
 }
 
+/** The library's word on a file in one sentence of ours. */
 function asRefusal(path: string, cause: unknown): unknown {
   if (cause instanceof TrainError) return cause;
-  const got = (cause as Error).message.split('\n')[0];
-  return refusal({ file: path }, 'a Parquet file', shown(got), 'check how it was written, or fetch it again', {
-    cause,
-  });
+  const { message } = cause as Error;
+  const refuse = (expected: string, got: string, remedy: string): Error =>
+    refusal({ file: path }, expected, got, remedy, { cause });
+  if (/^Out of Memory/i.test(message))
+    return refuse('row groups that fit in memory', 'larger ones', 'write it with smaller row groups, or as .npy');
+  if (/^Conversion Error/i.test(message))
+    return refuse('numbers that float32 can hold, up to 3.4e38', 'a larger one', 'scale the frames, or take it out');
+  return refuse('a whole Parquet file', 'a damaged one', 'fetch it again, or write it anew');
+}
+
+/** A path that means this one file, whatever letters its name has. */
+function thisFile(path: string): string {
+  return path.replace(/[[*?]/g, '[$&]');
 }
 
 function quoted(name: string): string {

@@ -237,7 +237,9 @@ describe('refusals', () => {
     writeFileSync(at('new.swn'), readFileSync(own).fill(9, 8, 9));
     await expect(use(file, at('new.swn'))).rejects.toThrow('expected a condenser of version 1, got version 9');
     await expect(use(file, file)).rejects.toThrow('expected a condenser file, got another kind of file');
-    await expect(use(file, at('none.swn'))).rejects.toThrow('expected a file that can be read');
+    await expect(use(file, at('none.swn'))).rejects.toThrow('none.swn: expected a condenser file, got nothing');
+    await expect(use(file, '')).rejects.toThrow('--with: expected a path');
+    await expect(use('', own)).rejects.toThrow('--frames: expected a path');
     expect(readCondenser(own).shape.frameLength).toBe(LENGTH);
     await expect(run(condenseCommand(), '--frames', file, other, ...TIMES, '--out', at('mixed'))).rejects.toThrow(
       'expected frames of 400 numbers',

@@ -28,6 +28,12 @@ function file(
   return path;
 }
 
+function emptyFile(name: string): string {
+  const path = join(folder, name);
+  writeFileSync(path, '');
+  return path;
+}
+
 const dictionary = (descr: string, shape: string, order = 'False'): string =>
   `{'descr': '${descr}', 'fortran_order': ${order}, 'shape': (${shape}), }`;
 
@@ -108,7 +114,13 @@ describe('what is refused', () => {
       () => file('m', "{'descr': [('a', '<f4')], 'fortran_order': False, 'shape': (2,)}", two),
       "expected 'descr'",
     ],
-    ['no file', () => join(folder, 'none.npy'), 'expected a file that can be read'],
+    [
+      'no file',
+      () => join(folder, 'none.npy'),
+      'none.npy: expected a recording of frames, got nothing: there is no such',
+    ],
+    ['a folder', () => folder, 'expected a recording of frames, got a folder; name the files in it'],
+    ['an empty file', () => emptyFile('q.npy'), 'q.npy: expected a recording of frames, got an empty file; fetch it'],
   ])('%s', async (_, path, message) => {
     await expect(openNpyFrames(path())).rejects.toThrow(message);
   });

@@ -1,5 +1,5 @@
 /** Frames out of Parquet files, which DuckDB writes for the test. */
-import { mkdtempSync, rmSync, writeFileSync } from 'node:fs';
+import { copyFileSync, mkdtempSync, readFileSync, rmSync, writeFileSync } from 'node:fs';
 import { tmpdir } from 'node:os';
 import { join } from 'node:path';
 import { DuckDBInstance } from '@duckdb/node-api';
@@ -99,10 +99,64 @@ describe('what is refused', () => {
     );
   });
 
-  test('another file, and none', async () => {
-    const path = join(folder, 'text.parquet');
-    writeFileSync(path, 'not a table');
-    await expect(openParquetFrames(path)).rejects.toThrow(/text.parquet: expected a Parquet file, got/);
-    await expect(openParquetFrames(join(folder, 'none'))).rejects.toThrow('expected a file that can be read');
+  test('numbers that float32 cannot hold, also so far from the beginning that the library says nothing', async () => {
+    const large = (row: number, rows: number): string =>
+      `SELECT [CASE WHEN i = ${row} THEN 1e300 ELSE 1 END]::DOUBLE[] AS v FROM range(${rows}) r(i)`;
+    for (const select of [large(3, 10), large(100_000, 120_000)]) {
+      const path = await written(select, ', ROW_GROUP_SIZE 2048');
+      await expect(openParquetFrames(path).then(readFrames)).rejects.toThrow(
+        `${path}: expected numbers that float32 can hold, up to 3.4e38, got a larger one; scale the frames`,
+      );
+    }
   });
+});
+
+describe('files that are none, or damaged', () => {
+  const WHOLE = 'SELECT [i, i + 1]::FLOAT[] AS v FROM range(5000) r(i)';
+  const changed = async (change: (bytes: Buffer) => Uint8Array): Promise<string> => {
+    const path = await written(WHOLE, ', COMPRESSION zstd');
+    writeFileSync(path, change(readFileSync(path)));
+    return path;
+  };
+  const noise = (bytes: Buffer, from: number, count: number): Buffer => {
+    for (let k = from; k < from + count; k++) bytes[k] = (bytes[k]! * 7 + 13) & 255;
+    return bytes;
+  };
+
+  test.each<[string, (bytes: Buffer) => Uint8Array, RegExp]>([
+    ['cut short', (bytes) => bytes.subarray(0, bytes.length >> 1), /got one without its end; it was cut short: fetch/],
+    [
+      'its end alone',
+      (bytes) => bytes.subarray(bytes.length >> 1),
+      /expected a Parquet file, got another kind of file/,
+    ],
+    ['both marks and no more', (bytes) => bytes.subarray(0, 4), /got one without its end/],
+    ['empty', () => new Uint8Array(0), /expected a recording of frames, got an empty file; fetch it again/],
+    ['text', () => Buffer.from('not a table'), /expected a Parquet file, got another kind of file; check the path/],
+    ['a damaged footer', (bytes) => noise(bytes, bytes.length - 200, 150), /got a damaged one; fetch it again/],
+    ['damaged numbers', (bytes) => noise(bytes, bytes.length >> 1, 200), /got a damaged one; fetch it again/],
+  ])('%s', async (_, change, message) => {
+    const path = await changed(change);
+    const refused = await openParquetFrames(path)
+      .then(readFrames)
+      .then(
+        () => 'accepted',
+        (error: Error) => error.message,
+      );
+    expect(refused).toMatch(message);
+    // One sentence of ours, none of the library's.
+    expect(refused).toMatch(/^\S+a\.parquet: expected [^"]*; [^"]*$/);
+  });
+
+  test('none, and a folder', async () => {
+    await expect(openParquetFrames(join(folder, 'none'))).rejects.toThrow('got nothing: there is no such file');
+    await expect(openParquetFrames(folder)).rejects.toThrow('got a folder; name the files in it');
+  });
+});
+
+test('a name with a star is that file alone', async () => {
+  const path = await written('SELECT [1.0, 2] AS v');
+  copyFileSync(path, join(folder, 's*.parquet'));
+  copyFileSync(path, join(folder, 'star.parquet'));
+  expect(await readFrames(await openParquetFrames(join(folder, 's*.parquet')))).toEqual([[1, 2]]);
 });
