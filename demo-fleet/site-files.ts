@@ -2,7 +2,7 @@
  * The site files of the demo, as an engineer would write them: where each sensor publishes, how its payload reads, what
  * its limits are. Wells publish {"value", "time"} with ISO times, stores {"v", "t"} with milliseconds.
  */
-import { formatSite, type PayloadReading, type Site } from '@stillwell/protocol';
+import { defaultWarnRule, formatSite, type PayloadReading, type Site } from '@stillwell/protocol';
 import { columnOf, type LogHabit } from './history-files.ts';
 import type { DemoSite } from './plants/sites.ts';
 
@@ -86,6 +86,7 @@ export function siteText(description: SiteDescription): string {
       low: one.limits.low ?? null,
       lowLow: null,
     },
+    warn: null,
     column: one.column,
   });
   const of = (role: 'signal' | 'input'): SiteChannel[] => description.channels.filter((one) => one.role === role);
@@ -98,6 +99,7 @@ export function siteText(description: SiteDescription): string {
     latenessMs: LATENESS_TICKS * description.tickMs,
     root: 'stillwell',
     residualBytesPerDay: 1_000_000,
+    warn: defaultWarnRule(description.horizon),
     signals: of('signal').map(channel),
     inputs: of('input').map((one) => ({
       ...channel(one),

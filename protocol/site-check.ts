@@ -5,6 +5,7 @@ import { formatDuration } from './duration.ts';
 import type { Fault } from './issue.ts';
 import { MAX_CHANNELS, MAX_HORIZON } from './limits.ts';
 import type { Limits, Signal, Site } from './site.ts';
+import { warnFaults } from './site-warn.ts';
 
 const fault = (path: readonly PropertyKey[], text: string): Fault => ({ path, isUnknownKey: false, text });
 
@@ -98,11 +99,11 @@ const planFaults = (site: Site): readonly Fault[] => {
   });
 };
 
-/** Lists what does not fit together in a site: horizon and tick, repeated names and readings, plan topics, order of
- * limits. */
+/** Lists what does not fit together in a site: horizon and tick, repeated names and readings, plan topics, rules of
+ * warnings, order of limits. */
 export const crossFaults = (site: Site): readonly Fault[] => {
   const entries = entriesOf(site);
-  const faults = [...horizonFaults(site), ...repeatFaults(entries), ...planFaults(site)];
+  const faults = [...horizonFaults(site), ...repeatFaults(entries), ...planFaults(site), ...warnFaults(site)];
   for (const { signal, path } of entries) faults.push(...limitFaults(signal, path));
   if (entries.length > MAX_CHANNELS) {
     faults.push(

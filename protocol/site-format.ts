@@ -6,6 +6,7 @@ import type { Document } from 'yaml';
 import { formatDuration } from './duration.ts';
 import type { Input, PayloadReading, Signal, Site } from './site.ts';
 import { type Exclusion, plainExclusion } from './site-exclude.ts';
+import { plainSignalWarn, plainWarn } from './site-warn.ts';
 import { yamlLibrary } from './yaml-library.ts';
 
 const plainPayload = (how: PayloadReading): unknown => {
@@ -28,6 +29,7 @@ const plainSignal = (signal: Signal | Input): Record<string, unknown> => {
     range: signal.range,
     aggregate: signal.aggregate,
     limits: Object.keys(limits).length === 0 ? null : limits,
+    warn: plainSignalWarn(signal.warn),
     column: signal.column === signal.name ? null : signal.column,
     plan_topic: 'planTopic' in signal ? signal.planTopic : null,
   });
@@ -43,6 +45,7 @@ const plainSite = (site: Site): Record<string, unknown> =>
     lateness: formatDuration(site.latenessMs),
     root: site.root,
     residual_budget: site.residualBytesPerDay,
+    warn: plainWarn(site.warn),
     signals: site.signals.map(plainSignal),
     inputs: site.inputs.length === 0 ? null : site.inputs.map(plainSignal),
     calendar: {
@@ -80,7 +83,7 @@ export const formatSite = (site: Site, comments: Readonly<Record<string, string>
   const document = new Document(plainSite(site), { version: '1.2', schema: 'core' });
   for (const list of ['signals', 'inputs'] as const) {
     for (let i = 0; i < site[list].length; i++) {
-      for (const key of ['range', 'payload', 'limits']) {
+      for (const key of ['range', 'payload', 'limits', 'warn']) {
         const node: unknown = document.getIn([list, i, key], true);
         if (isMap(node) || isSeq(node)) node.flow = true;
       }
@@ -92,6 +95,8 @@ export const formatSite = (site: Site, comments: Readonly<Record<string, string>
       if (isMap(node) || isSeq(node)) node.flow = true;
     }
   }
+  const warn: unknown = document.get('warn', true);
+  if (isMap(warn)) warn.flow = true;
   for (const [path, text] of Object.entries(comments)) {
     if (path === '') document.commentBefore = text.split('\n').map(oneLine).join('\n');
     else addComment(document, path, text);

@@ -13,6 +13,7 @@ import { nearestName } from './nearest.ts';
 import { isPointer } from './pointer.ts';
 import type { Aggregate, PayloadReading } from './site.ts';
 import { excludeEntrySchema, excludeSchema, whenSchema } from './site-exclude.ts';
+import { signalWarnSchema, warnSchema } from './site-warn.ts';
 import { checkTopicFilter } from './topics.ts';
 
 const isText = (value: unknown): value is string => typeof value === 'string';
@@ -181,6 +182,7 @@ const signalKeys = {
   range: range.nullish(),
   aggregate: aggregate.nullish(),
   limits: limits.nullish(),
+  warn: signalWarnSchema.nullish(),
   column: label.nullish(),
 };
 
@@ -207,6 +209,7 @@ export const siteFileSchema = z.strictObject({
   lateness: duration.nullish(),
   root: root.nullish(),
   residual_budget: byteCount.nullish(),
+  warn: warnSchema.nullish(),
   signals: z.array(signalSchema).min(1).max(MAX_SIGNALS),
   inputs: z.array(inputSchema).max(MAX_CHANNELS).nullish(),
   calendar: calendarSchema.nullish(),
@@ -218,10 +221,12 @@ export type SiteFile = z.output<typeof siteFileSchema>;
 
 /** Keys that the map at a path of the site file may have, for suggestions. */
 export const siteFileKeys = (path: readonly PropertyKey[]): readonly string[] => {
-  const [first, , third] = path;
+  const [first, , third, fourth] = path;
   if (path.length === 0) return Object.keys(siteFileSchema.shape);
   if (first === 'calendar') return Object.keys(calendarSchema.shape);
   if (first === 'exclude') return Object.keys((third === 'when' ? whenSchema : excludeEntrySchema).shape);
+  if (first === 'warn' || (third === 'warn' && fourth !== undefined)) return Object.keys(warnSchema.shape);
+  if (third === 'warn') return Object.keys(signalWarnSchema.shape);
   if (third === 'limits') return Object.keys(limitsSchema.shape);
   if (third === 'payload') return PAYLOAD_KEYS;
   if (first === 'inputs') return Object.keys(inputSchema.shape);

@@ -7,6 +7,7 @@ import { MAX_SITE_FILE_BYTES } from './limits.ts';
 import { crossFaults } from './site-check.ts';
 import { type Exclusion, excludeFaults, toExclusion } from './site-exclude.ts';
 import { type SiteFile, siteFileKeys, siteFileSchema } from './site-schema.ts';
+import { type SignalWarn, toSignalWarn, toWarnRule, type WarnRule } from './site-warn.ts';
 import { readYamlFile, type YamlKind } from './yaml-file.ts';
 
 /** How a tick makes one value of the readings that fall into it. */
@@ -39,6 +40,8 @@ export interface Signal {
   readonly range: readonly [number, number] | null;
   readonly aggregate: Aggregate;
   readonly limits: Limits;
+  /** What it says of its own warnings; null: nothing beside the site's rule. */
+  readonly warn: SignalWarn | null;
   /** Column of wide history files, or value of the signal column of long ones; the name unless said otherwise. */
   readonly column: string;
 }
@@ -69,6 +72,8 @@ export interface Site {
   /** First level of every topic of ours. */
   readonly root: string;
   readonly residualBytesPerDay: number;
+  /** When warnings open and close, where a signal says nothing else; `warnRuleOf` has the rule of a limit. */
+  readonly warn: WarnRule;
   readonly signals: readonly Signal[];
   readonly inputs: readonly Input[];
   readonly calendar: Calendar;
@@ -97,7 +102,7 @@ const toLimits = (limits: SignalEntry['limits']): Limits => {
   };
 };
 
-const toSignal = (entry: SignalEntry, aggregate: Aggregate): Signal => ({
+const toSignal = (entry: SignalEntry, aggregate: Aggregate, tickMs: number): Signal => ({
   name: entry.name,
   topic: entry.topic ?? null,
   payload: entry.payload ?? { kind: 'number' },
@@ -106,20 +111,28 @@ const toSignal = (entry: SignalEntry, aggregate: Aggregate): Signal => ({
   range: entry.range ?? null,
   aggregate: entry.aggregate ?? aggregate,
   limits: toLimits(entry.limits),
+  warn: toSignalWarn(entry.warn ?? null, tickMs),
   column: entry.column ?? entry.name,
 });
+
+const horizonOf = (file: SiteFile): number =>
+  'ticks' in file.horizon ? file.horizon.ticks : file.horizon.ms / file.tick;
 
 const toSite = (file: SiteFile): Site => ({
   site: file.site,
   equipmentClass: file.class ?? 'general',
   timeZone: file.time_zone,
   tickMs: file.tick,
-  horizon: 'ticks' in file.horizon ? file.horizon.ticks : file.horizon.ms / file.tick,
+  horizon: horizonOf(file),
   latenessMs: file.lateness ?? Math.min(Math.ceil(file.tick / 10), MOST_DEFAULT_LATENESS_MS),
   root: file.root ?? DEFAULT_ROOT,
   residualBytesPerDay: file.residual_budget ?? DEFAULT_RESIDUAL_BYTES_PER_DAY,
-  signals: file.signals.map((entry) => toSignal(entry, 'mean')),
-  inputs: (file.inputs ?? []).map((entry) => ({ ...toSignal(entry, 'last'), planTopic: entry.plan_topic ?? null })),
+  warn: toWarnRule(file.warn ?? null, horizonOf(file), file.tick),
+  signals: file.signals.map((entry) => toSignal(entry, 'mean', file.tick)),
+  inputs: (file.inputs ?? []).map((entry) => ({
+    ...toSignal(entry, 'last', file.tick),
+    planTopic: entry.plan_topic ?? null,
+  })),
   calendar: {
     timeOfDay: file.calendar?.time_of_day ?? true,
     dayOfWeek: file.calendar?.day_of_week ?? true,

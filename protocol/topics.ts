@@ -17,6 +17,10 @@ export interface SiteTopics {
   readonly bundle: string;
   readonly orders: string;
   readonly questions: string;
+  /** The open warnings of one signal. */
+  readonly warning: (signal: string) => string;
+  /** Answers to one asker whose client has no response topic of its own. */
+  readonly answers: (asker: string) => string;
 }
 
 const LEVELS = {
@@ -31,14 +35,17 @@ const LEVELS = {
 } as const;
 
 /** What a topic of ours carries. */
-export type TopicKind = keyof typeof LEVELS | 'forecast';
+export type TopicKind = keyof typeof LEVELS | 'forecast' | 'warning' | 'answers';
 
-/** A topic of ours taken apart; `signal` only for kind 'forecast'. */
+/** A topic of ours taken apart; `signal` for kinds 'forecast' and 'warning', of kind 'answers' the asker. */
 export interface ParsedTopic {
   readonly site: string;
   readonly kind: TopicKind;
   readonly signal: string | null;
 }
+
+/** Levels with one topic a name below them, and the kind of each. */
+const NAMED: Readonly<Record<string, TopicKind>> = { forecast: 'forecast', warning: 'warning', answers: 'answers' };
 
 /**
  * The topics of a site under a root.
@@ -58,6 +65,8 @@ export const topicsOf = (root: string, site: string): SiteTopics => {
     bundle: `${base}/${LEVELS.bundle}`,
     orders: `${base}/${LEVELS.orders}`,
     questions: `${base}/${LEVELS.questions}`,
+    warning: (signal: string) => `${base}/warning/${signal}`,
+    answers: (asker: string) => `${base}/answers/${asker}`,
   });
 };
 
@@ -66,7 +75,7 @@ export const parseTopic = (root: string, topic: string): ParsedTopic | null => {
   if (!topic.startsWith(`${root}/`)) return null;
   const [site, level, signal, ...rest] = topic.slice(root.length + 1).split('/');
   if (!site || level === undefined || rest.length > 0) return null;
-  if (level === 'forecast') return signal ? { site, kind: 'forecast', signal } : null;
+  if (Object.hasOwn(NAMED, level)) return signal ? { site, kind: NAMED[level]!, signal } : null;
   const found = Object.entries(LEVELS).find(([, text]) => text === level);
   if (found === undefined || signal !== undefined) return null;
   return { site, kind: found[0] as TopicKind, signal: null };

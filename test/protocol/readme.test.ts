@@ -15,6 +15,7 @@ import { parseSite } from '../../protocol/site.ts';
 import { PAYLOAD_KEYS, siteFileSchema } from '../../protocol/site-schema.ts';
 import { stateSchema } from '../../protocol/state.ts';
 import { parseTopic, topicsOf } from '../../protocol/topics.ts';
+import { warningSchema } from '../../protocol/warning.ts';
 import { schemaFields } from '../support/schema-fields.ts';
 
 const readme = readFileSync(new URL('../../protocol/README.md', import.meta.url), 'utf8');
@@ -75,6 +76,7 @@ describe('tables of fields', () => {
     ['forecasts', tableOf(readme, 'forecasts'), forecastsSchema],
     ['health', [...head, ...tableOf(readme, 'health')], healthSchema],
     ['receipt', tableOf(readme, 'receipt'), receiptSchema],
+    ['warning', [...head, ...tableOf(readme, 'warning')], warningSchema],
     ['plan', tableOf(readme, 'plan'), planSchema],
   ])('%s', (_, rows, schema) => expect(disagreements(rows, schema)).toEqual([]));
 
@@ -147,8 +149,9 @@ describe('envelope, topics, limits', () => {
 
   test('every topic stands in the table, and each is one of ours', () => {
     const told = tableOf(readme, 'topics').map(([topic]) => topic);
-    const { forecast, ...fixed } = topicsOf('{root}', '{site}');
-    expect([...told].sort()).toEqual([...Object.values(fixed), forecast('{signal}')].sort());
+    const { forecast, warning, answers, ...fixed } = topicsOf('{root}', '{site}');
+    const named = [forecast('{signal}'), warning('{signal}'), answers('{asker}')];
+    expect([...told].sort()).toEqual([...Object.values(fixed), ...named].sort());
     for (const topic of told) expect(parseTopic('{root}', topic!)).not.toBeNull();
   });
 

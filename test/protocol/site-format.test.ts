@@ -6,6 +6,7 @@ import { nearestName } from '../../protocol/nearest.ts';
 import { type Input, type Limits, parseSite, type Signal, type Site } from '../../protocol/site.ts';
 import type { Exclusion } from '../../protocol/site-exclude.ts';
 import { formatSite } from '../../protocol/site-format.ts';
+import type { SignalWarn, WarnWords } from '../../protocol/site-warn.ts';
 
 const SEED = 20260308;
 const record = <T>(model: { [K in keyof T]: fc.Arbitrary<T[K]> }) => fc.record<T>(model, { noNullPrototype: true });
@@ -27,6 +28,13 @@ const payload: fc.Arbitrary<Signal['payload']> = fc.oneof(
     time: fc.constantFrom(null, '/t', ''),
   }),
 );
+/** Openings above closings whatever stands around them. */
+const words: fc.Arbitrary<WarnWords> = record({
+  open: fc.option(fc.double({ min: 0.6, max: 1, noNaN: true })),
+  close: fc.option(fc.double({ min: 0.01, max: 0.3, noNaN: true })),
+  hold: fc.option(fc.integer({ min: 1, max: 5000 })),
+});
+const limitNames = ['highHigh', 'high', 'low', 'lowLow'] as const;
 const signal: fc.Arbitrary<Signal> = record({
   name,
   topic: fc.option(fc.constantFrom('a/b', '+/x', 'plant/#', 'yes', '123', ' spaced out ', '#')),
@@ -38,6 +46,19 @@ const signal: fc.Arbitrary<Signal> = record({
   ),
   aggregate: fc.constantFrom('last', 'mean', 'min', 'max', 'sum', 'increment'),
   limits,
+  warn: fc.option(
+    record<SignalWarn>({
+      open: fc.constant(null),
+      close: fc.option(fc.double({ min: 0.01, max: 0.3, noNaN: true })),
+      hold: fc.option(fc.integer({ min: 1, max: 5000 })),
+      limits: record({
+        highHigh: fc.option(words),
+        high: fc.option(words),
+        low: fc.option(words),
+        lowLow: fc.option(words),
+      }),
+    }),
+  ),
   column: fc.string({ unit: 'grapheme', minLength: 1, maxLength: 12 }),
 });
 const input: fc.Arbitrary<Input> = fc
@@ -65,6 +86,11 @@ const exclusion: fc.Arbitrary<Exclusion> = fc.oneof(
     afterMs: fc.nat(1e7),
   }),
 );
+/** Only limits that are set may be spoken of. */
+const ofSet = (said: SignalWarn['limits'], levels: Limits): SignalWarn['limits'] =>
+  Object.fromEntries(
+    limitNames.map((limit) => [limit, levels[limit] === null ? null : said[limit]]),
+  ) as SignalWarn['limits'];
 const site: fc.Arbitrary<Site> = record({
   site: name,
   equipmentClass: name,
@@ -74,6 +100,11 @@ const site: fc.Arbitrary<Site> = record({
   latenessMs: fc.nat(600_000),
   root: fc.constantFrom('stillwell', 'a/b/c'),
   residualBytesPerDay: fc.integer({ min: 1024, max: 1e9 }),
+  warn: record({
+    open: fc.double({ min: 0.6, max: 1, noNaN: true }),
+    close: fc.double({ min: 0.01, max: 0.3, noNaN: true }),
+    hold: fc.integer({ min: 1, max: 5000 }),
+  }),
   signals: fc.array(signal, { minLength: 1, maxLength: 4 }),
   inputs: fc.array(input, { maxLength: 2 }),
   calendar: record({
@@ -88,6 +119,7 @@ const site: fc.Arbitrary<Site> = record({
     ...channel,
     name: toName(`${Array.from(channel.name).slice(0, 5).join('')}_${i}`),
     topic: i === 0 ? channel.topic : null,
+    warn: channel.warn === null ? null : { ...channel.warn, limits: ofSet(channel.warn.limits, channel.limits) },
   });
   const signals = one.signals.map(own);
   const { name } = signals[0]!;

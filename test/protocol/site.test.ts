@@ -16,6 +16,7 @@ describe('a good site file', () => {
       latenessMs: 5000,
       root: 'stillwell',
       residualBytesPerDay: 100_000,
+      warn: { open: 0.5, close: 0.3, hold: 10 },
       signals: [
         {
           name: 'level',
@@ -26,6 +27,7 @@ describe('a good site file', () => {
           range: [0, 6],
           aggregate: 'last',
           limits: { highHigh: 5.5, high: 5, low: 0.5, lowLow: 0.25 },
+          warn: null,
           column: 'Level (m)',
         },
         {
@@ -37,6 +39,7 @@ describe('a good site file', () => {
           range: null,
           aggregate: 'mean',
           limits: { highHigh: null, high: null, low: null, lowLow: null },
+          warn: null,
           column: 'inflow',
         },
       ],
@@ -50,6 +53,7 @@ describe('a good site file', () => {
           range: null,
           aggregate: 'sum',
           limits: { highHigh: null, high: null, low: null, lowLow: null },
+          warn: null,
           column: 'rain',
           planTopic: 'weather/plan/rain',
         },

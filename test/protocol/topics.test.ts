@@ -16,6 +16,12 @@ describe('topics of a site', () => {
       kind: 'forecast',
       signal: 'flow',
     });
+    expect(parseTopic('plant/forecasts', topics.warning('flow'))).toEqual({
+      site: 'mill-lane',
+      kind: 'warning',
+      signal: 'flow',
+    });
+    expect(parseTopic('plant/forecasts', topics.answers('hmi-3'))).toMatchObject({ kind: 'answers', signal: 'hmi-3' });
     expect(topics.forecastAll).toBe('plant/forecasts/mill-lane/forecasts');
     expect(new Set(kinds.map((kind) => topics[kind])).size).toBe(kinds.length);
   });
@@ -30,6 +36,7 @@ describe('topics of a site', () => {
     ['a forecast of an empty name', 'stillwell/mill-lane/forecast/'],
     ['a forecast with a level too many', 'stillwell/mill-lane/forecast/flow/x'],
     ['a root that only begins alike', 'stillwellx/mill-lane/state'],
+    ['an answer two levels down', 'stillwell/mill-lane/answers/a/b'],
     ['a kind named like a method', 'stillwell/mill-lane/toString'],
   ])('%s is not one of ours', (_, topic) => expect(parseTopic('stillwell', topic)).toBeNull());
 

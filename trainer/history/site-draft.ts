@@ -2,7 +2,13 @@
  * A first site file from a history: what the readings tell (signals, tick, resolution, ranges), with room for what they do
  * not. A person is expected to go over it; the comments say where.
  */
-import { DEFAULT_RESIDUAL_BYTES_PER_DAY, DEFAULT_ROOT, type Signal, type Site } from '@stillwell/protocol';
+import {
+  DEFAULT_RESIDUAL_BYTES_PER_DAY,
+  DEFAULT_ROOT,
+  defaultWarnRule,
+  type Signal,
+  type Site,
+} from '@stillwell/protocol';
 import { TrainError } from '../errors.ts';
 import type { Progress } from '../progress.ts';
 import { cadenceOf, suggestTick } from './cadence.ts';
@@ -62,6 +68,7 @@ function signalOf(found: Discovered, siteName: string): Signal {
     range: null,
     aggregate: 'mean',
     limits: { highHigh: null, high: null, low: null, lowLow: null },
+    warn: null,
     column: found.column,
   };
 }
@@ -158,6 +165,7 @@ export async function draftSite(files: readonly string[], options: DraftOptions)
     latenessMs: 0,
     root: DEFAULT_ROOT,
     residualBytesPerDay: DEFAULT_RESIDUAL_BYTES_PER_DAY,
+    warn: defaultWarnRule(DEFAULT_HORIZON),
     signals,
     inputs: [],
     calendar: { timeOfDay: true, dayOfWeek: true, holidays: [] },
@@ -177,6 +185,7 @@ export async function draftSite(files: readonly string[], options: DraftOptions)
     ...rough,
     tickMs,
     horizon: horizonOf(tickMs),
+    warn: defaultWarnRule(horizonOf(tickMs)),
     latenessMs: Math.min(Math.ceil(tickMs / 10), MOST_LATENESS_MS),
     signals: signals.map((signal, c) => filledIn(signal, history.channels[c] as ChannelReadings)),
   };

@@ -68,6 +68,17 @@ describe('against simulated error chains', () => {
         // A crossing probability that hovers at one half has no sharp step.
         if (step > 0 && truth[H - 1] > 0.6) expect(Math.abs((said.step ?? H) - step)).toBeLessThanOrEqual(5);
         if (truth[H - 1] < 0.4) expect(said.step).toBeNull();
+        // By the earliest step few have crossed, by the latest most; the same method error.
+        for (const [at, share] of [
+          [said.earliest, 0.05],
+          [said.latest, 0.95],
+        ] as const) {
+          if (at === null) expect(truth[H - 1]).toBeLessThan(share + 0.075);
+          else {
+            expect(truth[at - 1]).toBeGreaterThan(share - 0.075);
+            expect(at === 1 ? 0 : truth[at - 2]).toBeLessThan(share + 0.075);
+          }
+        }
         // The mirror image is the same number.
         const mirrored = path.map((y) => 10 - y);
         const below = crossing(model, bounds, state, mirrored, 0, 5 - 2 * limit, 'below');
@@ -82,7 +93,12 @@ describe('ends of the scale', () => {
   const { state, bounds, median } = begin(model);
 
   test('far away: nothing; already beyond: at once', () => {
-    expect(crossing(model, bounds, state, median, 0, 900, 'above')).toEqual({ probability: 0, step: null });
+    expect(crossing(model, bounds, state, median, 0, 900, 'above')).toEqual({
+      probability: 0,
+      step: null,
+      earliest: null,
+      latest: null,
+    });
     const beyond = crossing(model, bounds, state, median, 0, 1, 'above');
     expect(beyond.probability).toBeGreaterThan(0.999);
     expect(beyond.step).toBe(1);

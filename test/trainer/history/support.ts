@@ -14,6 +14,7 @@ export function signal(name: string, more: Partial<Signal> = {}): Signal {
     range: null,
     aggregate: 'last',
     limits: { highHigh: null, high: null, low: null, lowLow: null },
+    warn: null,
     column: name,
     ...more,
   };
@@ -29,6 +30,7 @@ export function site(signals: readonly (string | Signal)[], more: Partial<Site> 
     latenessMs: 1000,
     root: 'stillwell',
     residualBytesPerDay: 100_000,
+    warn: { open: 0.5, close: 0.3, hold: 2 },
     signals: signals.map((one) => (typeof one === 'string' ? signal(one) : one)),
     inputs: [] as Input[],
     calendar: { timeOfDay: true, dayOfWeek: true, holidays: [] },
