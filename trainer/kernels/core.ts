@@ -100,6 +100,7 @@ export interface VectorLoops {
 /** Products at many distances and features carried forward, in the order of plain loops over time. */
 export interface ShiftLoops {
   shiftedDots64(sums: Pointer, a: Pointer, b: Pointer, n: number, shifts: number): void;
+  pairedDots64(sums: Pointer, x: Pointer, stride: number, rows: number, n: number): void;
   carryForward64(
     rows: Pointer,
     rowStride: number,

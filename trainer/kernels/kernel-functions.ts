@@ -71,6 +71,11 @@ export interface Kernels {
    */
   shiftedDotsAdd(sums: Float64Array, a: Float64Array, b: Float64Array, n: number, shifts: number): void;
   /**
+   * Adds Σ x_a(t) x_b(t) of every two rows b <= a of x, `stride` apart, over n ticks, a whole number of fours: sums
+   * (rows (rows + 1) / 2 × 4) hold every fourth product each, in the order of time, pair (a, b) at a (a + 1) / 2 + b.
+   */
+  pairedDotsAdd(sums: Float64Array, x: Float64Array, stride: number, rows: number, n: number): void;
+  /**
    * n features moved forward over `steps` ticks from `from`, a row (of `stride`) a tick: f = re f + own c of the first `real`
    * ones, f = re f + im g + own c and g = re g + im f + own c of the pairs after, c the change of the tick.
    */

@@ -166,6 +166,12 @@ export class MemoryKernels implements Kernels {
     this.#core.shiftedDots64(this.#at(sums, 4 * shifts), this.#at(a, n), this.#at(b, reach), n, shifts);
   }
 
+  pairedDotsAdd(sums: Float64Array, x: Float64Array, stride: number, rows: number, n: number): void {
+    if (n % 4 !== 0) throw new RangeError(`Products of rows over ${n} ticks: expected a whole number of fours.`);
+    const from = this.#at(x, rows > 0 ? (rows - 1) * stride + n : 0);
+    this.#core.pairedDots64(this.#at(sums, 2 * rows * (rows + 1)), from, stride, rows, n);
+  }
+
   carryForward(
     rows: Float64Array,
     stride: number,
@@ -179,7 +185,9 @@ export class MemoryKernels implements Kernels {
     if (real > n || (n - real) % 2 !== 0) {
       throw new RangeError(`${n} features, ${real} of them real: expected pairs after the real ones.`);
     }
-    const [re, im, own] = [factors.re, factors.im, factors.own].map((each) => this.#at(each, n));
+    const re = this.#at(factors.re, n);
+    const im = this.#at(factors.im, n);
+    const own = this.#at(factors.own, n);
     const to = this.#at(rows, steps > 0 ? (steps - 1) * stride + n : 0);
     const first = this.#at(from, n);
     this.#core.carryForward64(to, stride, first, re, im, own, real, n, this.#at(changes, steps), steps);

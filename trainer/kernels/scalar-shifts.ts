@@ -16,6 +16,11 @@ export function scalarShifts(buffer: ArrayBuffer): ShiftLoops {
     shiftedDots64(sums, a, b, n, shifts) {
       for (let k = 0; k < shifts; k++) addFourSums(heap, sums / 8 + 4 * k, a / 8, b / 8 + k, n);
     },
+    pairedDots64(sums, x, stride, rows, n) {
+      for (let a = 0, to = sums / 8; a < rows; a++) {
+        for (let b = 0; b <= a; b++, to += 4) addFourSums(heap, to, x / 8 + a * stride, x / 8 + b * stride, n);
+      }
+    },
     carryForward64(rows, rowStride, from, re, im, own, real, n, changes, steps) {
       const [x, y, z] = [re / 8, im / 8, own / 8];
       let last = from / 8;

@@ -33,6 +33,37 @@ describe('products at many distances', () => {
   });
 });
 
+describe('products of every two rows', () => {
+  test.each([
+    [0, 8],
+    [1, 4],
+    [2, 0],
+    [4, 12],
+    [7, 36],
+  ])('%i rows over %i ticks', (rows, n) => {
+    for (const kernels of bothKernels(BYTES)) {
+      const stride = n + 3;
+      const x = fill(kernels.alloc64(rows * stride), 1);
+      const sums = fill(kernels.alloc64(2 * rows * (rows + 1)), 2);
+      const expected = sums.slice();
+      for (let a = 0, pair = 0; a < rows; a++) {
+        for (let b = 0; b <= a; b++, pair++) {
+          for (let t = 0; t < n; t++) expected[4 * pair + (t % 4)] += x[a * stride + t] * x[b * stride + t];
+        }
+      }
+      kernels.pairedDotsAdd(sums, x, stride, rows, n);
+      expect(bits(sums)).toBe(bits(expected));
+    }
+  });
+
+  test('refuses a broken four and too few numbers', () => {
+    const [kernels] = bothKernels(BYTES);
+    const [sums, x] = [kernels.alloc64(12), kernels.alloc64(12)];
+    expect(() => kernels.pairedDotsAdd(sums, x, 6, 2, 6)).toThrow(/whole number of fours/);
+    expect(() => kernels.pairedDotsAdd(sums, x, 9, 2, 4)).toThrow(/expected at least 13/);
+  });
+});
+
 describe('features carried forward', () => {
   test.each([
     [1, 1],

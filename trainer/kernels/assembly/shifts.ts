@@ -57,6 +57,81 @@ function fourShifts(sums: usize, a: usize, b: usize, end: usize): void {
 }
 
 /**
+ * Adds Σ x_a(t) x_b(t) of every two rows b <= a over a whole number of fours, four running sums a pair, each of every
+ * fourth t: sums (rows (rows + 1) / 2 × 4), those of pair (a, b) at a (a + 1) / 2 + b. Rows lie `stride` apart. Two by two.
+ */
+export function pairedDots64(sums: usize, x: usize, stride: i32, rows: i32, n: i32): void {
+  const step = <usize>stride << 3;
+  const end = <usize>n << 3;
+  let row = x;
+  let to = sums;
+  let a = 0;
+  for (; a + 1 < rows; a += 2, row += step << 1) {
+    const next = to + (<usize>(a + 1) << 5);
+    let column = x;
+    let at: usize = 0;
+    for (let b = 0; b < a; b += 2, column += step << 1, at += 64) {
+      twoByTwo(to + at, next + at, row, row + step, column, column + step, end);
+    }
+    onePair(to + at, row, row, end);
+    onePair(next + at, row + step, row, end);
+    onePair(next + at + 32, row + step, row + step, end);
+    to = next + (<usize>(a + 2) << 5);
+  }
+  if (a == rows) return;
+  for (let b = 0; b <= a; b++, x += step, to += 32) onePair(to, row, x, end);
+}
+
+function onePair(sums: usize, a: usize, b: usize, end: usize): void {
+  let s0 = v128.load(sums);
+  let s1 = v128.load(sums, 16);
+  for (let t: usize = 0; t < end; t += 32) {
+    s0 = f64x2.add(s0, f64x2.mul(v128.load(a + t), v128.load(b + t)));
+    s1 = f64x2.add(s1, f64x2.mul(v128.load(a + t, 16), v128.load(b + t, 16)));
+  }
+  v128.store(sums, s0);
+  v128.store(sums, s1, 16);
+}
+
+/** The sums of two rows with two others; those of each row side by side. */
+function twoByTwo(to: usize, next: usize, a: usize, a1: usize, b: usize, b1: usize, end: usize): void {
+  let s0 = v128.load(to);
+  let s1 = v128.load(to, 16);
+  let s2 = v128.load(to, 32);
+  let s3 = v128.load(to, 48);
+  let s4 = v128.load(next);
+  let s5 = v128.load(next, 16);
+  let s6 = v128.load(next, 32);
+  let s7 = v128.load(next, 48);
+  for (let t: usize = 0; t < end; t += 32) {
+    const x0 = v128.load(a + t);
+    const y0 = v128.load(a1 + t);
+    const u0 = v128.load(b + t);
+    const v0 = v128.load(b1 + t);
+    s0 = f64x2.add(s0, f64x2.mul(x0, u0));
+    s2 = f64x2.add(s2, f64x2.mul(x0, v0));
+    s4 = f64x2.add(s4, f64x2.mul(y0, u0));
+    s6 = f64x2.add(s6, f64x2.mul(y0, v0));
+    const x1 = v128.load(a + t, 16);
+    const y1 = v128.load(a1 + t, 16);
+    const u1 = v128.load(b + t, 16);
+    const v1 = v128.load(b1 + t, 16);
+    s1 = f64x2.add(s1, f64x2.mul(x1, u1));
+    s3 = f64x2.add(s3, f64x2.mul(x1, v1));
+    s5 = f64x2.add(s5, f64x2.mul(y1, u1));
+    s7 = f64x2.add(s7, f64x2.mul(y1, v1));
+  }
+  v128.store(to, s0);
+  v128.store(to, s1, 16);
+  v128.store(to, s2, 32);
+  v128.store(to, s3, 48);
+  v128.store(next, s4);
+  v128.store(next, s5, 16);
+  v128.store(next, s6, 32);
+  v128.store(next, s7, 48);
+}
+
+/**
  * Moves a row of features forward over `steps` ticks, each tick's row (n) written after the last: with c the change of that
  * tick, f = re f + own c for the first `real` of them, and (f, g) = (re f - im g + own c, re g + im f + own c) for the pairs
  * after. `re`, `im` and `own` have an entry a feature, that of `im` negative at the first of a pair. Rows lie
