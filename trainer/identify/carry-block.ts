@@ -39,6 +39,8 @@ export function carryBlock(
   const ahead = kernels.alloc64(STEPS * m);
   const factors = factorsOf(kernels, poles, p / nc);
   last.set(phi);
+  // Views made once: made anew for every few ticks they would take as long as the features.
+  const lanes = changes.map((_, c) => lanesOf(poles, factors, (c * p) / nc, rows, last, own.subarray(c * STEPS)));
   for (let start = from; start < to; start += STEPS) {
     const steps = Math.min(STEPS, to - start);
     for (let c = 0; c < nc; c++) {
@@ -47,7 +49,9 @@ export function carryBlock(
         own[c * STEPS + t] = change[start + t];
         ahead[t * m + c] = change[start + t + horizon];
       }
-      carryChannel(kernels, poles, factors, (c * p) / nc, rows, n, last, own.subarray(c * STEPS), steps);
+      for (const { rows, last, factors, real, n: count, changes } of lanes[c]) {
+        kernels.carryForward(rows, n, last, factors, real, count, changes, steps);
+      }
     }
     kernels.orderedProductAdd(sums, ahead, rows, steps, m, n);
     last.set(rows.subarray((steps - 1) * n, steps * n));
@@ -83,25 +87,32 @@ function factorsOf(kernels: Kernels, poles: Poles, perChannel: number): Factors 
   return { re, im, own };
 }
 
-function carryChannel(
-  kernels: Kernels,
+/** Features of a channel that are carried together, as the kernels take them. */
+interface Lane {
+  readonly rows: Float64Array;
+  readonly last: Float64Array;
+  readonly factors: Factors;
+  readonly real: number;
+  readonly n: number;
+  readonly changes: Float64Array;
+}
+
+/** A channel's means and resonators, and its level where the bank has one, from feature `at` on. */
+function lanesOf(
   poles: Poles,
   factors: Factors,
   at: number,
   rows: Float64Array,
-  stride: number,
   last: Float64Array,
   changes: Float64Array,
-  steps: number,
-): void {
-  const paired = factors.re.length - (poles.level >= 0 ? 1 : 0);
+): Lane[] {
+  const n = factors.re.length - (poles.level >= 0 ? 1 : 0);
   const pairs = poles.isComplex.reduce((sum, one) => sum + one, 0);
-  const real = paired - 2 * pairs;
-  kernels.carryForward(rows.subarray(at), stride, last.subarray(at), factors, real, paired, changes, steps);
-  if (poles.level < 0) return;
+  const paired = { rows: rows.subarray(at), last: last.subarray(at), factors, real: n - 2 * pairs, n, changes };
+  if (poles.level < 0) return [paired];
   const { re, im, own } = factors;
-  const level = { re: re.subarray(paired), im: im.subarray(paired), own: own.subarray(paired) };
-  kernels.carryForward(rows.subarray(at + paired), stride, last.subarray(at + paired), level, 1, 1, changes, steps);
+  const level = { re: re.subarray(n), im: im.subarray(n), own: own.subarray(n) };
+  return [paired, { rows: rows.subarray(at + n), last: last.subarray(at + n), factors: level, real: 1, n: 1, changes }];
 }
 
 function fours(n: number): number {

@@ -4,7 +4,8 @@
  * readings equally far apart differ by their two ends alone; only lags with lags are summed directly. Before the first
  * reading a channel stood still, as in the filter.
  */
-import { dotShifted, dotsShifted, joinPoles, productsOfChanges, shiftBack } from './cross-steps.ts';
+import { createKernels, type Kernels } from '../kernels/kernels.ts';
+import { dotsShifted, joinPoles, productsOfChanges, shiftBack } from './cross-steps.ts';
 import type { Block, MomentInput, Moments } from './moments.ts';
 import type { Poles } from './poles.ts';
 
@@ -14,11 +15,9 @@ export interface Rings {
   readonly lags: readonly number[];
   /** (nc) of (longest + ticks): the readings after `longest` copies of the first. */
   readonly padded: readonly Float64Array[];
-  /** (nc·lags) of (ticks): ψ, entry c·lags + n. */
-  readonly features: readonly Float64Array[];
 }
 
-/** A block whose recursive moments are known. `cross` is Σ φ(t-1) Δ_i(t), (nc × p). */
+/** A block, the features one tick before it and at its last tick, and what is known of it. `cross` is Σ φ(t-1) Δ_i(t), (nc × p). */
 export interface LagBlock {
   readonly input: MomentInput;
   readonly block: Block;
@@ -28,7 +27,6 @@ export interface LagBlock {
   readonly before: Float64Array;
   readonly after: Float64Array;
   readonly cross: Float64Array;
-  readonly recursive: Moments;
 }
 
 /**
@@ -38,7 +36,7 @@ export interface LagBlock {
  * units   standardised
  * throws  nothing
  * source  definition
- * cost    O(T nc lags)
+ * cost    O(T nc)
  */
 export function ringsOf(values: readonly Float64Array[], lags: readonly number[]): Rings {
   const longest = Math.max(0, ...lags);
@@ -47,66 +45,106 @@ export function ringsOf(values: readonly Float64Array[], lags: readonly number[]
     out.set(y, longest);
     return out;
   });
-  const features = values.flatMap((y, c) =>
-    lags.map((lag) => {
-      const past = padded[c].subarray(longest - lag);
-      const out = new Float64Array(y.length);
-      for (let t = 0; t < y.length; t++) out[t] = past[t] - y[t];
-      return out;
-    }),
-  );
-  return { lags, padded, features };
+  return { lags, padded };
 }
 
 /**
- * Moments of recursive features and lags together, each channel's lags after its recursive features.
+ * Writes the moments of a block's lags, each channel's after its recursive features.
  *
- * shapes  as Moments, p = nc·(F + lags)
+ * shapes  into as Moments, p = nc·(F + lags)
  * units   sums over origins
  * throws  nothing
  * source  file head; checked in the tests against direct products
  * cost    O(T (nc² (longest + H) + (nc lags)²)) + O(nc p longest)
  */
-export function withLags(of: LagBlock): Moments {
-  const { input, block, rings, recursive, before } = of;
-  const nc = input.values.length;
-  const L = rings.lags.length;
-  const F = before.length / nc;
-  const width = input.signalCount * input.horizon;
-  const p = nc * (F + L);
-  const place = (c: number, f: number): number => c * (F + L) + f;
-  const features = new Float64Array(p * p);
-  const future = new Float64Array(p * width);
-  const featureSums = new Float64Array(p);
-  const pair = (row: number, col: number, value: number): void => {
-    features[row * p + col] = value;
-    features[col * p + row] = value;
-  };
-  for (let c = 0; c < nc; c++) {
-    for (let f = 0; f < F; f++) {
-      const from = c * F + f;
-      const to = place(c, f);
-      featureSums[to] = recursive.featureSums[from];
-      future.set(recursive.future.subarray(from * width, (from + 1) * width), to * width);
-      for (let d = 0; d < nc; d++) {
-        const row = recursive.features.subarray(from * nc * F + d * F, from * nc * F + (d + 1) * F);
-        features.set(row, to * p + place(d, 0));
-      }
+export function putLags(of: LagBlock, into: Pick<Moments, 'features' | 'future' | 'featureSums'>): void {
+  putRecursiveProducts(of, into.features);
+  putLagProducts(of, into.features, into.featureSums);
+  putLagsAhead(of, of.before.length / of.changes.length, into.future);
+}
+
+/** Ticks of all lags that lie in the nearer caches together; a multiple of four. */
+const CHUNK = 384;
+
+/** Σ ψ_l ψ_m of all lags of all channels, on both sides of the diagonal, and Σ ψ_l. */
+function putLagProducts({ rings, block, before }: LagBlock, features: Float64Array, featureSums: Float64Array): void {
+  const { lags, padded } = rings;
+  const nc = padded.length;
+  const L = lags.length;
+  const rows = nc * L;
+  const p = featureSums.length;
+  const place = Int32Array.from({ length: rows }, (_, a) => {
+    return (Math.floor(a / L) * p + before.length) / nc + (a % L);
+  });
+  const { kernels, psi, sums } = productsFor(rows);
+  sums.fill(0, 0, 2 * rows * (rows + 1));
+  for (const row of place) featureSums[row] = 0;
+  let ticks = 0;
+  for (let start = block.fromIndex; start < block.toIndex; start += CHUNK) {
+    ticks = Math.min(CHUNK, block.toIndex - start);
+    for (let a = 0; a < rows; a++) {
+      featureSums[place[a]] = writeLag(
+        padded[Math.floor(a / L)],
+        lags,
+        a % L,
+        start,
+        ticks,
+        psi,
+        a * CHUNK,
+        featureSums[place[a]],
+      );
+    }
+    kernels.pairedDotsAdd(sums, psi, CHUNK, rows, ticks - (ticks % 4));
+  }
+  for (let a = 0, at = 0; a < rows; a++) {
+    for (let b = 0; b <= a; b++, at += 4) {
+      let sum = sums[at];
+      for (let t = ticks - (ticks % 4); t < ticks; t++) sum += psi[a * CHUNK + t] * psi[b * CHUNK + t];
+      sum = sum + sums[at + 1] + (sums[at + 2] + sums[at + 3]);
+      features[place[a] * p + place[b]] = sum;
+      features[place[b] * p + place[a]] = sum;
     }
   }
-  putRecursiveProducts(of, features);
-  rings.features.forEach((psi, a) => {
-    const row = place(Math.floor(a / L), F + (a % L));
-    let sum = 0;
-    for (let t = block.fromIndex; t < block.toIndex; t++) sum += psi[t];
-    featureSums[row] = sum;
-    for (let b = 0; b <= a; b++) {
-      const other = rings.features[b];
-      pair(row, place(Math.floor(b / L), F + (b % L)), dotShifted(psi, other, block.fromIndex, block.toIndex, 0));
-    }
-  });
-  putLagsAhead(of, F, future);
-  return { ...recursive, features, future, featureSums };
+}
+
+/** Writes a lag's feature over some ticks and adds them to a sum. */
+function writeLag(
+  padded: Float64Array,
+  lags: readonly number[],
+  n: number,
+  start: number,
+  ticks: number,
+  out: Float64Array,
+  to: number,
+  before: number,
+): number {
+  const now = start + lags[lags.length - 1];
+  const past = now - lags[n];
+  let sum = before;
+  for (let t = 0; t < ticks; t++) {
+    const psi = padded[past + t] - padded[now + t];
+    out[to + t] = psi;
+    sum += psi;
+  }
+  return sum;
+}
+
+interface Products {
+  readonly rows: number;
+  readonly kernels: Kernels;
+  readonly psi: Float64Array;
+  readonly sums: Float64Array;
+}
+
+/** Scratch, made anew where more lags come: nothing in it outlives a call. */
+let held: Products | null = null;
+
+function productsFor(rows: number): Products {
+  if (held !== null && held.rows >= rows) return held;
+  const pairs = (rows * (rows + 1)) / 2;
+  const kernels = createKernels(8 * (rows * CHUNK + 4 * pairs) + 256);
+  held = { rows, kernels, psi: kernels.alloc64(rows * CHUNK), sums: kernels.alloc64(4 * pairs) };
+  return held;
 }
 
 /**

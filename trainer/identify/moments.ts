@@ -10,7 +10,7 @@
 import { type Bank, featureCount } from './bank.ts';
 import { carryBlock } from './carry-block.ts';
 import { dotShifted, joinPoles, productsOfChanges, shiftBack } from './cross-steps.ts';
-import { type Rings, ringsOf, withLags } from './lag-moments.ts';
+import { type LagBlock, putLags, ringsOf } from './lag-moments.ts';
 import { advancePoles, flattenPoles, type Poles } from './poles.ts';
 import { featureProducts } from './stein.ts';
 
@@ -54,20 +54,40 @@ export interface Block {
  * cost    O(T nc (p + nc H)) + O(p nc H + p²) a block
  */
 export function gatherMoments(input: MomentInput, blocks: readonly Block[]): Moments[] {
-  return [...eachMoments(input, blocks)];
+  return [...momentsIn(input, blocks, () => roomFor(input))];
 }
 
 /**
- * The same, one block at a time, for those who add them up.
+ * The same, one block at a time, for those who add them up: the next is written over the last.
  *
  * shapes  as `gatherMoments`
  * units   as `gatherMoments`
  * throws  as `gatherMoments`
  * source  as `gatherMoments`
- * cost    as `gatherMoments`
+ * cost    as `gatherMoments`; memory of one block
  */
-export function* eachMoments(input: MomentInput, blocks: readonly Block[]): Generator<Moments> {
-  const { values, bank, horizon } = input;
+export function eachMoments(input: MomentInput, blocks: readonly Block[]): Generator<Moments> {
+  const room = roomFor(input);
+  return momentsIn(input, blocks, () => room);
+}
+
+/** Where the moments of a block are written, all of it. */
+type Room = Omit<Moments, 'origins'>;
+
+function roomFor({ values, signalCount, bank, horizon }: MomentInput): Room {
+  const p = values.length * featureCount(bank);
+  const width = signalCount * horizon;
+  return {
+    features: new Float64Array(p * p),
+    future: new Float64Array(p * width),
+    energy: new Float64Array(width),
+    featureSums: new Float64Array(p),
+    futureSums: new Float64Array(width),
+  };
+}
+
+function* momentsIn(input: MomentInput, blocks: readonly Block[], nextRoom: () => Room): Generator<Moments> {
+  const { values, bank, horizon, signalCount } = input;
   const ticks = values[0].length;
   for (const block of blocks) {
     if (block.fromIndex >= 1 && block.toIndex > block.fromIndex && block.toIndex - 1 + horizon < ticks) continue;
@@ -83,13 +103,15 @@ export function* eachMoments(input: MomentInput, blocks: readonly Block[]): Gene
   if (poles.level >= 0) {
     for (let c = 0; c < values.length; c++) phi[c * perChannel + poles.feature[poles.level]] = -values[c][0];
   }
+  const stepwise = new Float64Array(horizon * signalCount * phi.length);
   let at = 1;
   for (const block of blocks) {
     for (; at < block.fromIndex; at++) advancePoles(poles, phi, changes, at);
     const before = phi.slice();
-    const furthest = carryBlock(poles, phi, changes, at, block.toIndex, horizon);
+    const cross = carryBlock(poles, phi, changes, at, block.toIndex, horizon);
     at = block.toIndex;
-    yield closeBlock(input, poles, changes, block, before, phi, furthest, rings);
+    const of = { input, block, poles, changes, rings, before, after: phi, cross };
+    yield { ...closeBlock(of, stepwise, nextRoom()), origins: block.toIndex - block.fromIndex };
   }
 }
 
@@ -99,22 +121,14 @@ function difference(y: Float64Array): Float64Array {
   return out;
 }
 
-function closeBlock(
-  input: MomentInput,
-  poles: Poles,
-  changes: readonly Float64Array[],
-  block: Block,
-  before: Float64Array,
-  after: Float64Array,
-  furthest: Float64Array,
-  rings: Rings,
-): Moments {
+/** Writes a block's moments, each channel's lags after its recursive features; `cross` comes one horizon ahead. */
+function closeBlock(of: LagBlock, stepwise: Float64Array, room: Room): Room {
+  const { input, block, poles, changes, rings, before, after, cross } = of;
   const nc = changes.length;
   const p = before.length;
+  const each = p / nc + rings.lags.length;
   const { horizon, signalCount } = input;
   const lagged = productsOfChanges(changes, block, horizon);
-  const stepwise = new Float64Array(horizon * signalCount * p);
-  const cross = furthest;
   for (let k = horizon; k >= 1; k--) {
     if (k < horizon) {
       shiftBack(cross, changes, block, before, after, k);
@@ -124,41 +138,47 @@ function closeBlock(
   }
   shiftBack(cross, changes, block, before, after, 0);
   const simultaneous = lagged.subarray(0, nc * nc);
-  const recursive = {
-    origins: block.toIndex - block.fromIndex,
-    features: featureProducts(poles, nc, before, after, cross, simultaneous, productsOfLevels(input, poles, block)),
-    future: summedAhead(stepwise, p, signalCount, horizon),
-    energy: futureEnergy(input, block),
-    featureSums: summedFeatures(poles, input, changes, block, before, after),
-    futureSums: summedFuture(input, block),
-  };
-  if (rings.lags.length === 0) return recursive;
-  return withLags({ input, block, poles, changes, rings, before, after, cross, recursive });
+  const levels = productsOfLevels(input, poles, block);
+  featureProducts(poles, nc, before, after, cross, simultaneous, levels, each, room.features);
+  sumAhead(stepwise, p, p / nc, each, signalCount, horizon, room.future);
+  sumFeatures(of, each, room.featureSums);
+  sumEnergy(input, block, room.energy);
+  sumFuture(input, block, room.futureSums);
+  if (rings.lags.length > 0) putLags(of, room);
+  return room;
 }
 
 /**
- * From Σ φ_f(t) Δ_i(t+k), laid (H × ny × p), to Σ φ_f(t) (y_i(t+h) - y_i(t)), laid (p × ny·H): a running sum over steps.
- * Eight features at a time, since either side read one by one would miss the cache at every number.
+ * From Σ φ_f(t) Δ_i(t+k), laid (H × ny × p), to Σ φ_f(t) (y_i(t+h) - y_i(t)), laid (nc·each × ny·H), F rows a channel: a
+ * running sum over steps. Eight features at a time, since either side read one by one would miss the cache at every number.
  */
-function summedAhead(stepwise: Float64Array, p: number, signalCount: number, horizon: number): Float64Array {
+function sumAhead(
+  stepwise: Float64Array,
+  p: number,
+  F: number,
+  each: number,
+  signalCount: number,
+  horizon: number,
+  out: Float64Array,
+): void {
   const tile = 8;
   const width = signalCount * horizon;
-  const out = new Float64Array(p * width);
   const sums = new Float64Array(tile);
+  const rows = new Int32Array(tile);
   for (let first = 0; first < p; first += tile) {
     const count = Math.min(tile, p - first);
+    for (let j = 0; j < count; j++) rows[j] = (Math.floor((first + j) / F) * each + ((first + j) % F)) * width;
     for (let i = 0; i < signalCount; i++) {
       sums.fill(0);
       for (let k = 0; k < horizon; k++) {
         const from = (k * signalCount + i) * p + first;
         for (let j = 0; j < count; j++) {
           sums[j] += stepwise[from + j];
-          out[(first + j) * width + i * horizon + k] = sums[j];
+          out[rows[j] + i * horizon + k] = sums[j];
         }
       }
     }
   }
-  return out;
 }
 
 /** (nc × nc) Σ z_i(t) z_j(t), on and below the diagonal; zeros where the bank has no level. */
@@ -174,41 +194,37 @@ function productsOfLevels({ values }: MomentInput, poles: Poles, block: Block): 
 }
 
 /** Σ φ(t): φ(t) = a φ(t-1) + drive Δ(t) summed, so (1 - a) Σ φ = a (before - after) + drive Σ Δ. */
-function summedFeatures(
-  poles: Poles,
-  { values }: MomentInput,
-  changes: readonly Float64Array[],
-  block: Block,
-  before: Float64Array,
-  after: Float64Array,
-): Float64Array {
-  const out = new Float64Array(before.length);
+function sumFeatures({ input, block, poles, changes, before, after }: LagBlock, each: number, out: Float64Array): void {
   const perChannel = before.length / changes.length;
-  changes.forEach((change, c) => {
+  for (let c = 0; c < changes.length; c++) {
+    const change = changes[c];
     let moved = 0;
     for (let t = block.fromIndex; t < block.toIndex; t++) moved += change[t];
     for (let m = 0; m < poles.count; m++) {
       const f = c * perChannel + poles.feature[m];
+      const to = c * each + poles.feature[m];
       if (m === poles.level) {
-        for (let t = block.fromIndex; t < block.toIndex; t++) out[f] -= values[c][t];
+        const y = input.values[c];
+        let sum = 0;
+        for (let t = block.fromIndex; t < block.toIndex; t++) sum -= y[t];
+        out[to] = sum;
         continue;
       }
-      const [aRe, aIm] = [poles.poleRe[m], poles.poleIm[m]];
+      const aRe = poles.poleRe[m];
+      const aIm = poles.poleIm[m];
       const xRe = before[f] - after[f];
       const xIm = poles.isComplex[m] === 1 ? before[f + 1] - after[f + 1] : 0;
       const re = aRe * xRe - aIm * xIm + poles.driveRe[m] * moved;
       const im = aRe * xIm + aIm * xRe + poles.driveIm[m] * moved;
       const size = (1 - aRe) * (1 - aRe) + aIm * aIm;
-      out[f] = (re * (1 - aRe) - im * aIm) / size;
-      if (poles.isComplex[m] === 1) out[f + 1] = (im * (1 - aRe) + re * aIm) / size;
+      out[to] = (re * (1 - aRe) - im * aIm) / size;
+      if (poles.isComplex[m] === 1) out[to + 1] = (im * (1 - aRe) + re * aIm) / size;
     }
-  });
-  return out;
+  }
 }
 
 /** (ny·H) Σ y(t+h) - y(t), from one step to the next by the two ends. */
-function summedFuture({ values, signalCount, horizon }: MomentInput, block: Block): Float64Array {
-  const out = new Float64Array(signalCount * horizon);
+function sumFuture({ values, signalCount, horizon }: MomentInput, block: Block, out: Float64Array): void {
   for (let i = 0; i < signalCount; i++) {
     const y = values[i];
     let sum = 0;
@@ -217,12 +233,10 @@ function summedFuture({ values, signalCount, horizon }: MomentInput, block: Bloc
       out[i * horizon + h - 1] = sum;
     }
   }
-  return out;
 }
 
-function futureEnergy(input: MomentInput, block: Block): Float64Array {
-  const { values, signalCount, horizon } = input;
-  const out = new Float64Array(signalCount * horizon);
+/** (ny·H) Σ (y(t+h) - y(t))². */
+function sumEnergy({ values, signalCount, horizon }: MomentInput, block: Block, out: Float64Array): void {
   for (let i = 0; i < signalCount; i++) {
     const y = values[i];
     let h = 1;
@@ -252,5 +266,4 @@ function futureEnergy(input: MomentInput, block: Block): Float64Array {
       out[i * horizon + h - 1] = sum;
     }
   }
-  return out;
 }

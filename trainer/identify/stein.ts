@@ -10,7 +10,8 @@ import type { Poles } from './poles.ts';
  *
  * shapes  before, after (p) features one tick before the block and at its last tick; cross (nc × p), entry i·p + f the
  *         sum of feature f at t-1 times the change of channel i at t; changes (nc × nc) sums of changes times changes;
- *         levels (nc × nc) sums of readings times readings, used where the bank has a level; result (p × p) symmetric
+ *         levels (nc × nc) sums of readings times readings, used where the bank has a level; out symmetric, (nc·each), where
+ *         each channel's features come first
  * units   standardised; sums
  * throws  nothing
  * source  Byrnes, Georgiou & Lindquist (2000), section II, with the two ends of a finite block added
@@ -24,22 +25,22 @@ export function featureProducts(
   cross: Float64Array,
   changes: Float64Array,
   levels: Float64Array,
-): Float64Array {
-  const p = before.length;
-  const out = new Float64Array(p * p);
-  const pair = new PairSolver(poles, channels, before, after, cross, changes);
+  each: number,
+  out: Float64Array,
+): void {
+  const width = channels * each;
+  const pair = new PairSolver(poles, channels, before, after, cross, changes, each);
   for (let i = 0; i < channels; i++) {
     for (let a = 0; a < poles.count; a++) {
       for (let j = 0; j <= i; j++) {
         const last = j === i ? a : poles.count - 1;
         for (let b = 0; b <= last; b++) {
           if (a !== poles.level || b !== poles.level) pair.solve(i, a, j, b, out);
-          else write(out, p, pair.place(i, a), pair.place(j, b), levels[i * channels + j]);
+          else write(out, width, pair.place(i, a), pair.place(j, b), levels[i * channels + j]);
         }
       }
     }
   }
-  return out;
 }
 
 class PairSolver {
@@ -49,6 +50,8 @@ class PairSolver {
   readonly #after: Float64Array;
   readonly #cross: Float64Array;
   readonly #changes: Float64Array;
+  /** Rows of the result a channel. */
+  readonly #each: number;
   /** Real and imaginary part of the sum last solved for. */
   #re = 0;
   #im = 0;
@@ -60,6 +63,7 @@ class PairSolver {
     after: Float64Array,
     cross: Float64Array,
     changes: Float64Array,
+    each: number,
   ) {
     this.#poles = poles;
     this.#channels = channels;
@@ -67,27 +71,33 @@ class PairSolver {
     this.#after = after;
     this.#cross = cross;
     this.#changes = changes;
+    this.#each = each;
   }
 
-  /** Index of the first feature of a channel's mode. */
+  /** Row of the first feature of a channel's mode. */
   place(channel: number, mode: number): number {
+    return channel * this.#each + this.#poles.feature[mode];
+  }
+
+  /** Index of the same in what is given. */
+  #index(channel: number, mode: number): number {
     return (channel * this.#before.length) / this.#channels + this.#poles.feature[mode];
   }
 
   /** Writes the products of mode a of channel i with mode b of channel j, on both sides of the diagonal. */
   solve(i: number, a: number, j: number, b: number, out: Float64Array): void {
     const { isComplex } = this.#poles;
-    const p = this.#before.length;
+    const p = this.#channels * this.#each;
     const f = this.place(i, a);
     const g = this.place(j, b);
-    this.#sum(i, a, f, j, b, g, 1);
+    this.#sum(i, a, j, b, 1);
     const plainRe = this.#re;
     const plainIm = this.#im;
     if (isComplex[a] === 0 && isComplex[b] === 0) {
       write(out, p, f, g, plainRe);
       return;
     }
-    this.#sum(i, a, f, j, b, g, -1);
+    this.#sum(i, a, j, b, -1);
     write(out, p, f, g, 0.5 * (plainRe + this.#re));
     if (isComplex[b] === 1) write(out, p, f, g + 1, 0.5 * (plainIm - this.#im));
     if (isComplex[a] === 1) write(out, p, f + 1, g, 0.5 * (plainIm + this.#im));
@@ -95,9 +105,11 @@ class PairSolver {
   }
 
   /** Σ φ_a φ_b for sign 1, Σ φ_a conj(φ_b) for sign -1, left in #re and #im. */
-  #sum(i: number, a: number, f: number, j: number, b: number, g: number, sign: number): void {
+  #sum(i: number, a: number, j: number, b: number, sign: number): void {
     const { poleRe, poleIm, driveRe, driveIm, isComplex } = this.#poles;
     const p = this.#before.length;
+    const f = this.#index(i, a);
+    const g = this.#index(j, b);
     const aRe = poleRe[a];
     const aIm = poleIm[a];
     const bRe = poleRe[b];
