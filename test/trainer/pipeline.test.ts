@@ -234,7 +234,16 @@ describe('refusals', () => {
   it('names a signal without readings', async () => {
     const error = await refusal(replaced(1, () => Number.NaN));
     expect(error.code).toBe('history');
-    expect(error.message).toMatch(/Signal flow: expected at least 16 readings .* got 0/);
+    expect(error.message).toMatch(/Signal flow: expected at least 16 readings .* got 0\. Check its column/);
+  });
+
+  it('says of a long history that only its newest ticks count for whether a signal is there', async () => {
+    const given = { series: replaced(1, () => Number.NaN), site, survey: {}, lattices: names.map(() => lattice) };
+    const earlierToCome = Promise.resolve(null);
+    await expect(fitHistory({ ...given, earlierToCome }, FIT_DEFAULTS)).rejects.toThrow(
+      'got 0. This history is long, and of a long one only the newest 1,500 ticks count for whether a signal is there: ' +
+        'one that stopped before them cannot be learned. Check its column',
+    );
   });
 
   it('refuses a history in which nothing moves', async () => {

@@ -63,7 +63,7 @@ export function prepareHistory(
   const ends = { learnTicks, calibrateEnd: learnTicks + calibrateTicks };
   const excursions = findExcursions(series, steps, longGap, ends);
   const calm = withoutExcursions(series, excursions);
-  const found = findScalings(calm, learnTicks, ends.calibrateEnd, steps);
+  const found = findScalings(calm, learnTicks, ends.calibrateEnd, steps, hasEarlier);
   const scalings = found.map((scaling, c) => withinRange(scaling, channelsOf(site)[c]));
   const first = fillHistory(calm, scalings, 0, longGap, ends);
   const learning = first.values.slice(0, series.signalCount).map((z) => z.subarray(0, learnTicks));

@@ -25,7 +25,7 @@ const LEAST_READINGS = 16;
  * Scalings of all channels.
  *
  * shapes  learnTicks the length of the learning part from the series' start; clipTicks that of learning and calibration
- *         part together; steps (nc) lattice steps; result (nc)
+ *         part together; steps (nc) lattice steps; hasEarlier: the series is the newest part of a longer one; result (nc)
  * units   the signals'
  * throws  TrainError 'history' naming a channel without readings, or where every signal is constant
  * source  own choice of robust range; the clip's share as measured to be wide enough on real records
@@ -36,10 +36,11 @@ export function findScalings(
   learnTicks: number,
   clipTicks: number,
   steps: readonly number[],
+  hasEarlier = false,
 ): Scaling[] {
   const scalings = series.values.map((y, c) => {
     const read = finite(y.subarray(0, learnTicks));
-    if (read.length < LEAST_READINGS) throw tooFew(series, c, read.length, learnTicks);
+    if (read.length < LEAST_READINGS) throw tooFew(series, c, read.length, learnTicks, hasEarlier);
     const sorted = read.slice().sort();
     const scaling = scalingOf(read, sorted, steps[c]);
     const later = finite(y.subarray(learnTicks, clipTicks));
@@ -131,12 +132,16 @@ function believedRange(sorted: Float64Array): readonly [number, number] {
   return [sorted[0], sorted[sorted.length - 1]];
 }
 
-function tooFew(series: Series, channel: number, got: number, ticks: number): TrainError {
+function tooFew(series: Series, channel: number, got: number, ticks: number, hasEarlier: boolean): TrainError {
   const role = channel < series.signalCount ? 'Signal' : 'Input';
+  const newest = hasEarlier
+    ? ` This history is long, and of a long one only the newest ${series.ticks.toLocaleString('en')} ticks count for whether ` +
+      `${role === 'Signal' ? 'a signal' : 'an input'} is there: one that stopped before them cannot be learned.`
+    : '';
   return new TrainError(
     'history',
     `${role} ${series.names[channel]}: expected at least ${LEAST_READINGS} readings in the learning part of ${ticks} ticks, ` +
-      `got ${got}. Check its column in the history, or take it out of the site file.`,
+      `got ${got}.${newest} Check its column in the history, or take it out of the site file.`,
     { details: { channel: series.names[channel], got } },
   );
 }
