@@ -5,7 +5,7 @@ import type { ColumnsEngine } from './columns-engine.ts';
 import { firstTimeOf } from './first-time.ts';
 import { Gathering, type Span } from './gathering.ts';
 import { type InputFile, inspectFile } from './input-file.ts';
-import { type Interrupt, Interrupted, watchSignals } from './interrupt.ts';
+import { type Interrupt, Interrupted, type SignalWatch, watchSignals } from './interrupt.ts';
 import type { LongOptions } from './long.ts';
 import { placeOf, takeOut } from './long-place.ts';
 import { StreamMerge } from './merge.ts';
@@ -30,7 +30,7 @@ export interface ReadingSettings extends LongOptions {
 /** A place is as large as what is learned so far: it is saved this seldom, and so seldom that it costs a twentieth of the time. */
 const SAVE_EVERY_MS = 30_000;
 const SAVE_SHARE = 20;
-const NEVER: Interrupt & { end(): void } = { isAsked: false, end: () => {} };
+const NEVER: SignalWatch = { isAsked: false, kept: () => {}, end: () => {} };
 
 /** Holds the parts while they are filled. */
 export class LongReading {
@@ -88,34 +88,17 @@ export class LongReading {
    * throws  Interrupted once the place is saved; LateReading; what the files refuse
    */
   async through(): Promise<void> {
-    const { belongs, resumeFile, saveEveryMs = SAVE_EVERY_MS } = this.#settings;
-    const own = belongs === null || this.#settings.interrupt !== undefined ? NEVER : watchSignals();
-    const interrupt = this.#settings.interrupt ?? own;
-    let savedMs = performance.now();
-    let waitMs = saveEveryMs;
-    let isSaved = false;
-    const save = async (): Promise<void> => {
-      if (belongs === null || resumeFile === undefined) return;
-      const fromMs = performance.now();
-      savePlace(resumeFile, belongs, await placeOf(this, this.#sink));
-      savedMs = performance.now();
-      if (saveEveryMs > 0) waitMs = Math.max(saveEveryMs, SAVE_SHARE * (savedMs - fromMs));
-      isSaved = true;
-    };
+    const { belongs, interrupt } = this.#settings;
+    const own = belongs === null || interrupt !== undefined ? NEVER : watchSignals();
     try {
-      while (await this.merge.step(this.recent)) {
-        await this.older.handOn(this.recent, false);
-        this.#tell();
-        if (interrupt.isAsked) {
-          await save();
-          throw new Interrupted();
-        }
-        if (performance.now() - savedMs >= waitMs) await save();
-      }
-      // What took long to read is kept until the result is written.
-      if (isSaved) await save();
-    } finally {
+      await this.#readAll(interrupt ?? own);
       own.end();
+    } catch (cause) {
+      // On the way out after an interrupt no further signal may kill before the person is told where things stand.
+      if (cause instanceof Interrupted) own.kept();
+      else own.end();
+      throw cause;
+    } finally {
       this.#settings.progress?.end();
     }
     const { firstTick, endTick } = this.recent;
@@ -124,6 +107,36 @@ export class LongReading {
     refuseUnseen(this.#site, (c) => this.recent.holds(c), this.merge.finished);
     await this.older.handOn(this.recent, true);
     this.#sink.end?.();
+  }
+
+  async #readAll(interrupt: Interrupt): Promise<void> {
+    const { saveEveryMs = SAVE_EVERY_MS } = this.#settings;
+    let savedMs = performance.now();
+    let waitMs = saveEveryMs;
+    let isSaved = false;
+    let hasMore = true;
+    for (let steps = 0; hasMore; steps++) {
+      hasMore = await this.merge.step(this.recent);
+      if (hasMore) await this.older.handOn(this.recent, false);
+      this.#tell();
+      // Where all had been read before, there is nothing to stop.
+      if (interrupt.isAsked && (hasMore || steps > 0)) {
+        await this.#save();
+        throw new Interrupted();
+      }
+      // What took long to read is kept until the result is written.
+      if (hasMore ? performance.now() - savedMs < waitMs : !isSaved) continue;
+      const fromMs = performance.now();
+      await this.#save();
+      savedMs = performance.now();
+      if (saveEveryMs > 0) waitMs = Math.max(saveEveryMs, SAVE_SHARE * (savedMs - fromMs));
+      isSaved = true;
+    }
+  }
+
+  async #save(): Promise<void> {
+    const { belongs, resumeFile } = this.#settings;
+    if (belongs !== null && resumeFile !== undefined) savePlace(resumeFile, belongs, await placeOf(this, this.#sink));
   }
 
   /** A file that will be sorted may hold earlier times than its first row has: it is opened at once. */

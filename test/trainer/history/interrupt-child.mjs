@@ -1,13 +1,13 @@
 /**
- * Reads a long history in a process of its own and, where asked to, sends that process a signal at the first chunk handed
- * on. Prints what came of it as JSON.
+ * Reads a long history in a process of its own and, where asked to, sends that process signals, all at once, at an early
+ * chunk handed on. Prints what came of it as JSON.
  *
- *   node interrupt-child.mjs HISTORY PLACE [SIGNAL]
+ *   node interrupt-child.mjs HISTORY PLACE [SIGNAL…]
  */
 import { INTERRUPTED_CODE, Interrupted } from '../../../trainer/dist/history/interrupt.js';
 import { loadLong } from '../../../trainer/dist/history/long.js';
 
-const [history, resumeFile, signal] = process.argv.slice(2);
+const [history, resumeFile, ...asked] = process.argv.slice(2);
 const limits = { longFrom: 96, recentTicks: 64, chunkTicks: 16, blockBytes: 256 };
 const plain = { payload: { kind: 'number' }, unit: '1', resolution: null, range: null, aggregate: 'last' };
 const none = { highHigh: null, high: null, low: null, lowLow: null };
@@ -26,7 +26,7 @@ const said = [];
 let chunks = 0;
 const sink = {
   take: () => {
-    if (chunks++ === 2 && signal !== undefined) process.kill(process.pid, signal);
+    if (chunks++ === 2) for (const signal of asked) process.kill(process.pid, signal);
   },
   snapshot: () => Uint8Array.of(chunks),
   restore: ([count]) => {
