@@ -1,7 +1,7 @@
 /** Bundles, keys and places to write to that are no good, through both commands. */
 import { existsSync } from 'node:fs';
 import { join } from 'node:path';
-import { createKeyPair, formatKey, publicHalf } from '@stillwell/protocol';
+import { createKeyPair, decodeBundle, encodeBundle, formatKey, publicHalf } from '@stillwell/protocol';
 import { afterAll, describe, expect, it } from 'vitest';
 import { Folders, PICTURE } from '../support/bad-input.ts';
 import { type Case, contentsOf } from '../support/cli.ts';
@@ -207,4 +207,17 @@ it('the good bundle with its key is shown and loaded', async () => {
   expect(shown.out).toMatch(/signature holds/);
   expect(await folders.run(load, folder)).toMatchObject({ code: 0, err: '' });
   expect(Object.keys(contentsOf(join(folder, 'data/slots'))).some((path) => path.endsWith('a.swb'))).toBe(true);
+}, 120_000);
+
+it('a candidate whose probe comes out otherwise is shown, with exit code 1', async () => {
+  const { probe, ...rest } = decodeBundle(documentOf());
+  const altered = encodeBundle({ ...rest, probe: { ...probe, digest: new Uint8Array(32) } });
+  const folder = folders.make({ 'x.swc': altered, 'first.swc': documentOf() });
+  const shown = await folders.run('stillwell show x.swc', folder);
+  expect(shown).toMatchObject({ code: 1, err: '' });
+  expect(shown.out).toMatch(/Probe: DOES NOT HOLD: .*; the file is damaged, get it again or fit again\n/);
+  const { code, out } = await folders.run('stillwell show x.swc --json', folder);
+  expect(code).toBe(1);
+  expect(JSON.parse(out).probe).toMatch(/differ from the stated ones/);
+  expect(await folders.run('stillwell show first.swc', folder)).toMatchObject({ code: 0, err: '' });
 }, 120_000);

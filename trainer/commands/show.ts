@@ -7,6 +7,9 @@ import { SEGMENT_MAGIC, segmentFacts, segmentText } from '../describe-segment.ts
 import { TrainError } from '../errors.ts';
 import { readBytesFile, readKey } from '../key-file.ts';
 
+/** Exit code where all could be shown, and the file is damaged nevertheless. */
+const PROBE_FAILED = 1;
+
 interface ShowOptions {
   readonly key?: string;
   readonly json: boolean;
@@ -19,7 +22,11 @@ export function showCommand(): Command {
     .argument('<file>', 'bundle, candidate or segment')
     .option('--key <author.pub>', 'verify the signature with this key; exit code 2 if it does not hold')
     .option('--json', 'as JSON', false)
-    .addHelpText('after', '\nExample:\n  stillwell show pump-7.swb --key author.pub')
+    .addHelpText(
+      'after',
+      '\nEnds with exit code 1 where the probe does not hold: the file is damaged, and no gateway takes it.\n' +
+        '\nExample:\n  stillwell show pump-7.swb --key author.pub',
+    )
     .action(show);
 }
 
@@ -57,6 +64,7 @@ function show(file: string, options: ShowOptions): void {
     { what: seal ? 'bundle' : 'candidate', file, seal, probe: probe ?? 'holds', ...facts },
     lines.join('\n'),
   );
+  if (probe !== null) process.exitCode = PROBE_FAILED;
 }
 
 function segmentFactsOf(file: string, content: Uint8Array): ReturnType<typeof segmentFacts> {
@@ -99,7 +107,9 @@ function sealText(
 }
 
 function probeText(difference: string | null): string {
-  return difference === null ? 'Probe: replayed here, every bit as stated' : `Probe: DOES NOT HOLD: ${difference}`;
+  return difference === null
+    ? 'Probe: replayed here, every bit as stated'
+    : `Probe: DOES NOT HOLD: ${difference}; the file is damaged, get it again or fit again`;
 }
 
 function print(isJson: boolean, facts: unknown, text: string): void {
