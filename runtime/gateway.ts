@@ -162,6 +162,7 @@ export class Gateway {
       log.info(`connected to the broker, MQTT ${event.protocol === 5 ? '5' : '3.1.1'}`);
       this.#holdUntil = Math.min(this.#holdUntil, clock.monotonic() + SETTLE_MS);
       this.#shipper.connected();
+      this.#publisher.connected();
       this.#sayHealth();
     } else if (event.kind === 'lost') {
       this.#shipper.lost();
@@ -274,13 +275,13 @@ export class Gateway {
   #publishTick(): void {
     this.#isPublishDue = false;
     if (this.#isStopping) return;
-    const { serving } = this.engine;
-    if (serving !== null && serving.tick >= 0) {
-      const wall = this.#ports.clock.wall();
-      const byWall = this.#config.clock === 'wall' && wall >= CLOCK_UNSET_MS;
-      const issuedAtMs = byWall ? wall : this.engine.aligner.newestMs;
-      this.#publisher.tick(serving, this.engine.plans, this.engine.aligner.lastReadingMs, issuedAtMs);
-    }
+    const { serving, aligner } = this.engine;
+    const wall = this.#ports.clock.wall();
+    const byWall = this.#config.clock === 'wall' && wall >= CLOCK_UNSET_MS;
+    const issuedAtMs = byWall ? wall : aligner.newestMs;
+    if (serving !== null && serving.tick >= 0)
+      this.#publisher.tick(serving, this.engine.plans, aligner.lastReadingMs, issuedAtMs);
+    else if (aligner.nextTick !== null) this.#publisher.silent(aligner.nextTick - 1, issuedAtMs);
     this.#tend(false);
     const before = this.#status;
     this.#setStatus();

@@ -26,7 +26,7 @@ export { type StuckGuard, standsStill } from './repeats.ts';
 export { lookAtInput, ownFeatureCount, type ResponseModel } from './response.ts';
 export type { Round } from './round.ts';
 export { restoreBounds, restoreState, saveBounds, saveState } from './snapshot.ts';
-export { createState, type FilterState, FOLDED, MISSING, PASSED_OVER, STUCK } from './state.ts';
+export { createState, type FilterState, FOLDED, fadeTicks, MISSING, PASSED_OVER, STUCK } from './state.ts';
 export {
   type CorrectionBuffers,
   createCorrection,

@@ -1,28 +1,15 @@
 /** The forecast messages of a tick: one a signal for people and controllers, one for all signals for our own parts. */
-import {
-  type BundleChannel,
-  forecastMessage,
-  forecastsMessage,
-  type LimitName,
-  type LimitOutlook,
-  type Limits,
-} from '@stillwell/protocol';
-import { crossing } from '@stillwell/runtime/filter';
+import { type BundleChannel, forecastMessage, forecastsMessage, type LimitOutlook } from '@stillwell/protocol';
 import type { Serving } from '../serving.ts';
 import { headOf, type Occasion } from './moment.ts';
-
-const LIMITS: readonly (readonly [LimitName, keyof Limits, 'above' | 'below'])[] = [
-  ['high_high', 'highHigh', 'above'],
-  ['high', 'high', 'above'],
-  ['low', 'low', 'below'],
-  ['low_low', 'lowLow', 'below'],
-];
+import { type Outlook, shownProbability } from './outlooks.ts';
 
 /** One signal's payload; `lastReadingMs` NaN where there was none. The site file's limits rule, not the bundle's. */
 export function forecastPayload(
   serving: Serving,
   occasion: Occasion,
   signal: number,
+  outlooks: readonly Outlook[],
   lastReadingMs: number,
 ): Uint8Array {
   const { model, checked } = serving;
@@ -40,7 +27,7 @@ export function forecastPayload(
     median: path(serving.median),
     lower: path(serving.lower),
     upper: path(serving.upper),
-    limits: outlooks(serving, signal, occasion.site.signals[signal]!.limits),
+    limits: outlooks.map((outlook) => limitOutlook(serving, outlook)),
     inputs: inputsWord(occasion),
     inputsAhead: occasion.inputs,
     lastReadingMs: Number.isNaN(lastReadingMs) ? null : lastReadingMs,
@@ -70,19 +57,14 @@ export function forecastsPayload(serving: Serving, occasion: Occasion): Uint8Arr
   });
 }
 
-function outlooks(serving: Serving, signal: number, limits: Limits): LimitOutlook[] {
-  const { model, bounds, state, median } = serving;
-  return LIMITS.flatMap(([limit, key, side]) => {
-    const value = limits[key];
-    if (value === null) return [];
-    const { probability, step } = crossing(model, bounds, state, median, signal, value, side);
-    const timeMs = step === null ? null : (serving.tick + step) * model.tickMs;
-    return [{ limit, value, probability: Math.round(probability * 1000) / 1000, timeMs }];
-  });
+/** As it stands in a message. */
+export function limitOutlook({ tick, model }: Serving, { limit, value, probability, step }: Outlook): LimitOutlook {
+  const timeMs = step === null ? null : (tick + step) * model.tickMs;
+  return { limit, value, probability: shownProbability(probability), timeMs };
 }
 
 /** To a hundredth of the sensor's step or finer, in decimals: a reader gains nothing from seventeen digits. */
-function rounding(channel: BundleChannel): (value: number) => number {
+export function rounding(channel: BundleChannel): (value: number) => number {
   const decimals = Math.min(12, Math.max(0, Math.ceil(-Math.log10(channel.lattice.step)) + 2));
   const factor = 10 ** decimals;
   return (value) => {

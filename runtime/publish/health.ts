@@ -42,6 +42,8 @@ export interface HealthReport {
   readonly ship: ShipCounts;
   /** Times the connection was lost. */
   readonly reconnects: number;
+  /** Further counts, of what lies outside the engine. */
+  readonly counts?: Readonly<Record<string, number | Readonly<Record<string, number>>>>;
 }
 
 /** What the broker says when the gateway vanishes. */
@@ -105,6 +107,7 @@ export function healthPayload(report: HealthReport): Uint8Array {
       ...planCounts(engine),
       spool_bytes: spool.bytes,
       reconnects: report.reconnects,
+      ...report.counts,
     },
     lastChange: report.lastChange,
     versions: VERSIONS,

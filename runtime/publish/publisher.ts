@@ -15,7 +15,9 @@ import { forecastPayload, forecastsPayload } from './forecasts.ts';
 import { healthPayload, willPayload } from './health.ts';
 import { inputOutlooks } from './inputs.ts';
 import { validUntil } from './moment.ts';
+import { outlooksOf } from './outlooks.ts';
 import { statePayload } from './state.ts';
+import { Warnings } from './warnings.ts';
 
 const JSON_TYPE = 'application/json';
 const MSGPACK_TYPE = 'application/vnd.msgpack';
@@ -34,6 +36,7 @@ export class Publisher {
   readonly #ports: GatewayPorts;
   readonly #connection: Connection;
   readonly #topics: SiteTopics;
+  readonly #warnings: Warnings;
   #healthAt = Number.NEGATIVE_INFINITY;
   #isHealthWanted = false;
 
@@ -42,6 +45,20 @@ export class Publisher {
     this.#ports = ports;
     this.#connection = connection;
     this.#topics = topics;
+    const { site, data: folder } = config;
+    const isReady = (): boolean => this.#isReady;
+    const publish = (message: Outgoing): Promise<void> => connection.publish(message);
+    this.#warnings = new Warnings({ site, topics, folder, disk: ports.disk, log: ports.log, isReady, publish });
+  }
+
+  /** The broker is there and keeps up. */
+  get #isReady(): boolean {
+    return this.#connection.isConnected && this.#connection.backlogBytes <= MOST_BACKLOG_BYTES;
+  }
+
+  /** Call when the broker is there again. */
+  connected(): void {
+    this.#warnings.reconnected();
   }
 
   /** What the broker publishes when the gateway vanishes. */
@@ -53,11 +70,14 @@ export class Publisher {
 
   /** State and forecasts of the tick that `serving` has folded in last. */
   tick(serving: Serving, plans: PlanKeeper, lastReadingMs: Float64Array, issuedAtMs: number): void {
-    if (!this.#connection.isConnected || this.#connection.backlogBytes > MOST_BACKLOG_BYTES) return;
-    serving.computeBounds();
     const { site, gateway, clock } = this.#config;
     const inputs = inputOutlooks(serving, plans, site, issuedAtMs);
     const occasion = { site, gateway, issuedAtMs, isCatchingUp: this.isCatchingUp, plans, inputs };
+    const outlooks = site.signals.map(({ limits }, i) => outlooksOf(serving, serving.median, i, limits));
+    // Also while nobody can be told: what was said before must not look different after.
+    this.#warnings.tick(serving, occasion, outlooks);
+    if (!this.#isReady) return;
+    serving.computeBounds();
     // In event time the broker's clock knows nothing of the message's.
     const leftMs = clock === 'wall' ? validUntil(serving.tick, site) - issuedAtMs : Number.NaN;
     const send = (topic: string, payload: Uint8Array, contentType: string): void => {
@@ -66,10 +86,17 @@ export class Publisher {
     };
     for (let i = 0; i < serving.model.signalCount; i++) {
       const { name } = serving.checked.bundle.channels[i]!;
-      send(this.#topics.forecast(name), forecastPayload(serving, occasion, i, lastReadingMs[i]!), JSON_TYPE);
+      const payload = forecastPayload(serving, occasion, i, outlooks[i]!, lastReadingMs[i]!);
+      send(this.#topics.forecast(name), payload, JSON_TYPE);
     }
     send(this.#topics.forecastAll, forecastsPayload(serving, occasion), MSGPACK_TYPE);
     send(this.#topics.state, statePayload(serving, occasion), JSON_TYPE);
+  }
+
+  /** A tick closed without a bundle that could forecast. */
+  silent(tick: number, issuedAtMs: number): void {
+    const { site, gateway } = this.#config;
+    this.#warnings.without({ site: site.site, gateway, issuedAtMs }, tick);
   }
 
   /** Whether health should be said again: its time has come, or something was left unsaid. */
@@ -101,6 +128,7 @@ export class Publisher {
       wallTickMs: clock === 'wall' ? site.tickMs : null,
       holdsMs: 3 * healthSeconds * 1000,
       reconnects: this.reconnects,
+      counts: { warnings_open: this.#warnings.open, warnings_opened: this.#warnings.opened },
     });
     writeStatus(this.#ports.disk, data, payload);
     const said = this.#send({ topic: this.#topics.health, payload, qos: 1, retain: true, contentType: JSON_TYPE });

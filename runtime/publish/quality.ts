@@ -15,7 +15,7 @@ export interface Judged {
 }
 
 /** A signal without readings for so many ticks counts as stale. */
-const STALE_TICKS = 3;
+export const STALE_TICKS = 3;
 
 /** Judges one signal, or all of them where `signal` is null; `planFault` says how plans in use proved wrong. */
 export function judge(

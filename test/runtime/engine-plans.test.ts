@@ -7,6 +7,7 @@ import { Engine } from '../../runtime/engine.ts';
 import { forecastPayload } from '../../runtime/publish/forecasts.ts';
 import { healthPayload } from '../../runtime/publish/health.ts';
 import { inputOutlooks } from '../../runtime/publish/inputs.ts';
+import { outlooksOf } from '../../runtime/publish/outlooks.ts';
 import { MemoryDisk } from '../support/memory-disk.ts';
 import { FIRST_TICK, plantMessages, SITE_TEXT, sealedOf, trusted } from '../support/running-site.ts';
 
@@ -58,7 +59,8 @@ function forecast({ engine }: Run, signal = 0) {
   const issuedAtMs = (serving.tick + 1) * TICK + site.latenessMs;
   const inputs = inputOutlooks(serving, engine.plans, site, issuedAtMs);
   const occasion = { site, gateway: 'g1', issuedAtMs, isCatchingUp: false, plans: engine.plans, inputs };
-  return parseForecastMessage(forecastPayload(serving, occasion, signal, issuedAtMs));
+  const outlooks = outlooksOf(serving, serving.median, signal, site.signals[signal]!.limits);
+  return parseForecastMessage(forecastPayload(serving, occasion, signal, outlooks, issuedAtMs));
 }
 
 describe('a plan', () => {
