@@ -208,14 +208,14 @@ async function shrink(
   const { series, site } = input;
   const span = indices(split.calibrate, series);
   const wanted = { coverage: options.coverage, limits: siteLimits(site), stuck: prepared.stuck };
-  const begun = new Map<Candidate, Promise<Calibration>>();
+  const begun = new Map<Candidate, () => Promise<Calibration>>();
   const attempt = { series, site, options, split, prepared, taught, around, bytesLeft };
   const choice = chooseKind(attempt, (first) => {
     if (beside !== null) begun.set(first, beside.settle(first.rounded, prepared.calm, span, wanted));
   });
   const { candidate } = choice;
   const plans = learnPlans(candidate, prepared, split.calibrate.toTick - series.firstTick, planned);
-  const calibration = await (begun.get(candidate) ?? settle(candidate.rounded, prepared.calm, span, wanted));
+  const calibration = await (begun.get(candidate)?.() ?? settle(candidate.rounded, prepared.calm, span, wanted));
   const parts = { ...partsOf(candidate.sections, candidate.settled), calibration, response: plans.response?.tensors };
   const bundle = composeBundle(parts);
   return { choice, bundle, parts, plans, float: withCalibration(candidate.float, calibration) };

@@ -7,6 +7,8 @@ import type { Bundle } from '@stillwell/protocol';
 import type { Model } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
 import type { Settled } from '../judge/settle.ts';
+import { settleStuck } from '../judge/stuck-guard.ts';
+import { withCalibration } from '../kinds/candidate.ts';
 import type { Calibration } from '../quantise/float-model.ts';
 import type { TickSpan } from '../span.ts';
 import type { Checks } from './requests.ts';
@@ -29,9 +31,20 @@ export class JudgingBeside {
     this.#thread.ask('judging', null);
   }
 
-  /** As `settle` on the main thread. */
-  settle(model: Model, series: Series, span: TickSpan, wanted: Settled): Promise<Calibration> {
-    return this.#begun().ask('settle', { model, series: shared(series), span, wanted });
+  /**
+   * As `settle` on the main thread. What is got ends it: crossings, the larger part, may still be learned beside while the main
+   * thread judges the guard against sensors that hang, which goes by neither.
+   */
+  settle(model: Model, series: Series, span: TickSpan, wanted: Settled): () => Promise<Calibration> {
+    const thread = this.#begun();
+    const bounds = thread.ask('bounds', { model, series: shared(series), span, wanted });
+    const crossings = thread.ask('crossings', null);
+    return async () => {
+      const { guarded, standing } = await bounds;
+      const bounded = withCalibration(model, guarded);
+      const stuck = settleStuck(bounded, series, span, wanted.stuck, standing ?? undefined);
+      return { ...guarded, ...(await crossings), ...(stuck === undefined ? {} : { stuck }) };
+    };
   }
 
   /** As `auditRounding` of a long judged part, and `reliance`. */

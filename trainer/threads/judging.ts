@@ -1,13 +1,33 @@
 /** What the second thread can judge; loaded there when asked for, since it is much. */
 import { modelFromBundle } from '@stillwell/runtime/filter';
+import { calibrate } from '../judge/calibrate.ts';
+import { type LearnedCrossing, learnCrossing } from '../judge/crossing-table.ts';
+import { scoreEvery } from '../judge/origin-budget.ts';
 import { reliance } from '../judge/reliance.ts';
-import { settle } from '../judge/settle.ts';
+import { standingAt } from '../judge/replay.ts';
+import { withCalibration } from '../kinds/candidate.ts';
 import { auditRounding } from '../quantise/audit.ts';
-import type { Requests } from './requests.ts';
+import type { Bounded, Requests } from './requests.ts';
 
-/** Answers 'settle'. */
-export function settled({ model, series, span, wanted }: Requests['settle']['given']): Requests['settle']['got'] {
-  return settle(model, series, span, wanted);
+/** What 'bounds' leaves for 'crossings'. */
+let open: (() => LearnedCrossing) | null = null;
+
+/** Answers 'bounds': the first half of `settle`. */
+export function bounded({ model, series, span, wanted }: Requests['bounds']['given']): Bounded {
+  const before = { ...span, fromTick: span.fromTick - 1 };
+  const isLong = scoreEvery(span.toTick - span.fromTick) > 1;
+  const standing = isLong ? standingAt(model, series, before, before.fromTick) : undefined;
+  const guarded = calibrate(model, series, span, wanted.coverage, null, standing);
+  open = () => learnCrossing(withCalibration(model, guarded), series, span, wanted.limits);
+  return { guarded, standing: standing ?? null };
+}
+
+/** Answers 'crossings'. */
+export function crossed(): LearnedCrossing {
+  if (open === null) throw new Error('The second thread was asked for crossings before bounds.');
+  const learned = open();
+  open = null;
+  return learned;
 }
 
 /** Answers 'check'. */

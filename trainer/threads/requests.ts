@@ -2,7 +2,9 @@
 import type { Bundle, Site } from '@stillwell/protocol';
 import type { Model } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
+import type { LearnedCrossing } from '../judge/crossing-table.ts';
 import type { Reliance } from '../judge/reliance.ts';
+import type { Standing } from '../judge/replay.ts';
 import type { Settled } from '../judge/settle.ts';
 import type { Audit } from '../quantise/audit.ts';
 import type { Calibration } from '../quantise/float-model.ts';
@@ -26,16 +28,25 @@ export interface Requests {
   close: { given: Series; got: Uint8Array | null };
   /** Loads what follows needs. */
   judging: { given: null; got: null };
-  /** All that a model gets from the calibration part; the span in indices. */
-  settle: {
+  /** Bounds and spike guard of a model from the calibration part; the span in indices. */
+  bounds: {
     given: { readonly model: Model; readonly series: Series; readonly span: TickSpan; readonly wanted: Settled };
-    got: Calibration;
+    got: Bounded;
   };
+  /** What that model, so bounded, says of limits with. */
+  crossings: { given: null; got: LearnedCrossing };
   /** Of the judged part, in indices. */
   check: {
     given: { readonly bundle: Bundle; readonly float: Model; readonly series: Series; readonly judged: TickSpan };
     got: Checks;
   };
+}
+
+/** What the calibration part gives a model first. */
+export interface Bounded {
+  readonly guarded: Calibration;
+  /** The model warmed up on what lies before that part; null where it is short. */
+  readonly standing: Standing | null;
 }
 
 /** What is found of a chosen model beside its hindcast. */

@@ -34,7 +34,8 @@ const ANSWERS: Answers = {
     await judging();
     return null;
   },
-  settle: async (given) => (await judging()).settled(given),
+  bounds: async (given) => (await judging()).bounded(given),
+  crossings: async () => (await judging()).crossed(),
   check: async (given) => (await judging()).checked(given),
 };
 

@@ -33,7 +33,7 @@ it('settles what the main thread would, whatever the kind', async () => {
   const beside = await begun();
   for (const candidate of [tryLinear(attempt), tryDense(attempt)!]) {
     const here = settle(candidate.rounded, prepared.calm, span, wanted);
-    expect(await beside.settle(candidate.rounded, prepared.calm, span, wanted)).toEqual(here);
+    expect(await beside.settle(candidate.rounded, prepared.calm, span, wanted)()).toEqual(here);
   }
 });
 
@@ -63,6 +63,8 @@ it('refuses as the main thread does', async () => {
   const wanted = { coverage: 0.8, limits: [], stuck: attempt.prepared.stuck };
   const here = (): unknown => settle(rounded, short, span, wanted);
   expect(here).toThrow();
-  const refused = await (await begun()).settle(rounded, short, span, wanted).catch((error: unknown) => error);
+  const refused = await (await begun())
+    .settle(rounded, short, span, wanted)()
+    .catch((error: unknown) => error);
   expect(here).toThrow((refused as Error).message);
 });
