@@ -77,20 +77,22 @@ export function pickMoments(
   const { channelCount, signalCount, featureCount } = layout;
   const p = channelCount * featureCount;
   const width = signalCount * layout.steps;
-  const rows: number[] = [];
-  for (let c = 0; c < channelCount; c++) for (const f of kept) rows.push(c * featureCount + f);
-  const cols: number[] = [];
-  for (let i = 0; i < signalCount; i++) for (const h of steps) cols.push(i * layout.steps + h - 1);
+  const rows = new Int32Array(channelCount * kept.length);
+  for (let a = 0; a < rows.length; a++) {
+    rows[a] = Math.floor(a / kept.length) * featureCount + kept[a % kept.length];
+  }
+  const cols = new Int32Array(signalCount * steps.length);
+  for (let b = 0; b < cols.length; b++) {
+    cols[b] = Math.floor(b / steps.length) * layout.steps + steps[b % steps.length] - 1;
+  }
   const features = new Float64Array(rows.length * rows.length);
   const future = new Float64Array(rows.length * cols.length);
-  rows.forEach((row, a) => {
-    rows.forEach((col, b) => {
-      features[a * rows.length + b] = moments.features[row * p + col];
-    });
-    cols.forEach((col, b) => {
-      future[a * cols.length + b] = moments.future[row * width + col];
-    });
-  });
+  for (let a = 0; a < rows.length; a++) {
+    const from = rows[a] * p;
+    for (let b = 0; b < rows.length; b++) features[a * rows.length + b] = moments.features[from + rows[b]];
+    const ahead = rows[a] * width;
+    for (let b = 0; b < cols.length; b++) future[a * cols.length + b] = moments.future[ahead + cols[b]];
+  }
   return {
     origins: moments.origins,
     features,

@@ -51,7 +51,8 @@ export function findPeriods(values: readonly Float64Array[], tickMs: number): Pe
   const isDaily = day >= SHORTEST_PERIOD_TICKS && day <= LONGEST_PERIOD_TICKS && ticks >= LEAST_PERIODS * day;
   const others: number[] = [];
   const size = segmentTicks(ticks);
-  const spectra = values.map((y) => averagedSpectrum(y, size));
+  const window = Float64Array.from({ length: size }, (_, t) => 0.5 - 0.5 * Math.cos((2 * Math.PI * t) / size));
+  const spectra = values.map((y) => averagedSpectrum(y, window));
   const peaks = spectralPeaks(spectra, size, ticks, CLEAR_RATIO);
   const main = isDaily ? day : (peaks.find(({ isRepeated }) => isRepeated)?.period ?? 0);
   if (main === 0) return { main, others: [] };
@@ -116,13 +117,14 @@ function peakShift(power: Float64Array, k: number): number {
   return bend === 0 ? 0 : (0.5 * (left - right)) / bend;
 }
 
-/** (size / 2) a signal's averaged spectrum, its total made 1 so that no signal speaks louder than another. */
-function averagedSpectrum(y: Float64Array, size: number): Float64Array {
+/** (size / 2) a signal's averaged spectrum in segments of the window's size, its total made 1 so that no signal speaks louder than another. */
+function averagedSpectrum(y: Float64Array, window: Float64Array): Float64Array {
+  const size = window.length;
   const own = new Float64Array(size / 2);
-  const window = Float64Array.from({ length: size }, (_, t) => 0.5 - 0.5 * Math.cos((2 * Math.PI * t) / size));
+  const re = new Float64Array(size);
+  const im = new Float64Array(size);
   for (let from = 0; size > 0 && from + size <= y.length; from += size / 2) {
-    const re = new Float64Array(size);
-    const im = new Float64Array(size);
+    im.fill(0);
     let mean = 0;
     for (let t = 0; t < size; t++) mean += y[from + t] / size;
     for (let t = 0; t < size; t++) re[t] = (y[from + t] - mean) * window[t];

@@ -20,9 +20,12 @@ const MOST_LOST = 0.1;
 const MOST_RESTS = 8;
 const MOST_TICKS = 65_535;
 
-interface Run {
-  readonly value: number;
-  readonly length: number;
+/** Runs of equal readings in order of time. */
+interface Runs {
+  readonly count: number;
+  /** (count or more) */
+  readonly values: Float64Array;
+  readonly lengths: Int32Array;
 }
 
 /**
@@ -82,30 +85,48 @@ function eachRun(y: Float64Array, visit: (value: number, from: number, to: numbe
   if (from >= 0) visit(y[from], from, last + 1, length);
 }
 
-function runsOf(y: Float64Array): Run[] {
-  const runs: Run[] = [];
+function runsOf(y: Float64Array): Runs {
+  const values = new Float64Array(y.length);
+  const lengths = new Int32Array(y.length);
+  let count = 0;
   eachRun(y, (value, _from, _to, length) => {
-    runs.push({ value, length });
+    values[count] = value;
+    lengths[count++] = length;
   });
-  return runs;
+  return { count, values, lengths };
+}
+
+/** The runs that last at least so long, at values other than some. */
+function without({ count, values, lengths }: Runs, rests: readonly number[], least: number): Runs {
+  const left = { values: new Float64Array(count), lengths: new Int32Array(count) };
+  let kept = 0;
+  for (let k = 0; k < count; k++) {
+    if (lengths[k] < least || (rests.length > 0 && rests.includes(values[k]))) continue;
+    left.values[kept] = values[k];
+    left.lengths[kept++] = lengths[k];
+  }
+  return { count: kept, ...left };
+}
+
+function readingsIn({ count, lengths }: Runs): number {
+  let sum = 0;
+  for (let k = 0; k < count; k++) sum += lengths[k];
+  return sum;
 }
 
 const OFF = { ticks: 0, rests: [] as readonly number[] };
 
-function guardOf(runs: readonly Run[], learnTicks: number): { ticks: number; rests: readonly number[] } {
-  const readings = runs.reduce((sum, { length }) => sum + length, 0);
+function guardOf(runs: Runs, learnTicks: number): { ticks: number; rests: readonly number[] } {
+  const readings = readingsIn(runs);
   let rests: readonly number[] = [];
   // Values rested at are known by the guard's length, and the guard's length by what is left without them.
   for (let round = 0; round < 3; round++) {
-    const left = runs.filter(({ value }) => !rests.includes(value));
+    const left = rests.length === 0 ? runs : without(runs, rests, 0);
     const ticks = lengthOf(left);
     if (ticks === 0 || ticks > Math.min(MOST_TICKS, MOST_SHARE * learnTicks)) return OFF;
-    const long = left.filter(({ length }) => length >= ticks);
+    const long = without(left, [], ticks);
     const again = valuesSeenTwice(long);
-    if (again.length === 0) {
-      const lost = long.reduce((sum, { length }) => sum + length, 0);
-      return lost > MOST_LOST * readings ? OFF : { ticks, rests };
-    }
+    if (again.length === 0) return readingsIn(long) > MOST_LOST * readings ? OFF : { ticks, rests };
     rests = [...rests, ...again];
     if (rests.length > MOST_RESTS) return OFF;
   }
@@ -113,10 +134,11 @@ function guardOf(runs: readonly Run[], learnTicks: number): { ticks: number; res
 }
 
 /** Length that runs dying out at the slowest rate seen would reach `EXPECTED` times; 0 where they do not die out. */
-function lengthOf(runs: readonly Run[]): number {
-  const longest = runs.reduce((most, { length }) => Math.max(most, length), 0);
+function lengthOf({ count, lengths }: Runs): number {
+  let longest = 0;
+  for (let k = 0; k < count; k++) if (lengths[k] > longest) longest = lengths[k];
   const atLeast = new Float64Array(longest + 2);
-  for (const { length } of runs) atLeast[length]++;
+  for (let k = 0; k < count; k++) atLeast[lengths[k]]++;
   for (let k = longest; k >= 0; k--) atLeast[k] += atLeast[k + 1];
   if (!(atLeast[1] >= FEWEST_RUNS)) return 0;
   let rate = 0;
@@ -127,12 +149,12 @@ function lengthOf(runs: readonly Run[]): number {
   return Math.max(SHORTEST, k + Math.ceil(further));
 }
 
-function valuesSeenTwice(runs: readonly Run[]): number[] {
+function valuesSeenTwice({ count, values }: Runs): number[] {
   const seen = new Set<number>();
   const twice = new Set<number>();
-  for (const { value } of runs) {
-    if (seen.has(value)) twice.add(value);
-    seen.add(value);
+  for (let k = 0; k < count; k++) {
+    if (seen.has(values[k])) twice.add(values[k]);
+    seen.add(values[k]);
   }
   return [...twice];
 }

@@ -14,16 +14,16 @@
 export function fourier(re: Float64Array, im: Float64Array): void {
   const n = re.length;
   if (n === 0 || (n & (n - 1)) !== 0 || im.length !== n) throw new RangeError(`Length ${n} is not a power of two.`);
+  const { cos, sin } = turnsOf(n);
   reorder(re, im);
   for (let half = 1; half < n; half *= 2) {
     for (let k = 0; k < half; k++) {
-      const angle = (-Math.PI * k) / half;
-      const cos = Math.cos(angle);
-      const sin = Math.sin(angle);
+      const c = cos[half + k];
+      const s = sin[half + k];
       for (let a = k; a < n; a += 2 * half) {
         const b = a + half;
-        const xr = re[b] * cos - im[b] * sin;
-        const xi = re[b] * sin + im[b] * cos;
+        const xr = re[b] * c - im[b] * s;
+        const xi = re[b] * s + im[b] * c;
         re[b] = re[a] - xr;
         im[b] = im[a] - xi;
         re[a] += xr;
@@ -31,6 +31,31 @@ export function fourier(re: Float64Array, im: Float64Array): void {
       }
     }
   }
+}
+
+interface Turns {
+  readonly n: number;
+  /** (n) entry half + k: of the angle -πk / half, half a power of two, k < half. */
+  readonly cos: Float64Array;
+  readonly sin: Float64Array;
+}
+
+/** Kept while transforms of one length follow each other. */
+let held: Turns | null = null;
+
+function turnsOf(n: number): Turns {
+  if (held?.n === n) return held;
+  const cos = new Float64Array(n);
+  const sin = new Float64Array(n);
+  for (let half = 1; half < n; half *= 2) {
+    for (let k = 0; k < half; k++) {
+      const angle = (-Math.PI * k) / half;
+      cos[half + k] = Math.cos(angle);
+      sin[half + k] = Math.sin(angle);
+    }
+  }
+  held = { n, cos, sin };
+  return held;
 }
 
 /** Bit reversal. */
@@ -41,7 +66,11 @@ function reorder(re: Float64Array, im: Float64Array): void {
     for (; j & bit; bit >>= 1) j ^= bit;
     j ^= bit;
     if (i >= j) continue;
-    [re[i], re[j]] = [re[j], re[i]];
-    [im[i], im[j]] = [im[j], im[i]];
+    const real = re[i];
+    const imaginary = im[i];
+    re[i] = re[j];
+    im[i] = im[j];
+    re[j] = real;
+    im[j] = imaginary;
   }
 }
