@@ -102,8 +102,10 @@ export function roundedFactors(
 ): { readonly factors: Factors; readonly tensors: FactorTensors } {
   const held = new Map<string, Tensor>();
   const round: Round = (name, values, rows, cols, replaced) => {
-    const tensor =
-      replaced === null ? quantiseTensor(values, rows, cols, 'i16') : roundRows(values, rows, cols, replaced);
+    let tensor: Tensor;
+    if (replaced === null) tensor = quantiseTensor(values, rows, cols, 'i16');
+    else if (name === 'bottleneck') tensor = firstRounded(bottleneckOf(learned, size), values, rows, cols, replaced);
+    else tensor = roundRows(values, rows, cols, replaced);
     held.set(name, tensor);
     return dequantise(tensor);
   };
@@ -121,15 +123,58 @@ export function roundedFactors(
   };
 }
 
+function bottleneckOf(learned: Learned, { hasOwn }: Size): Bottleneck {
+  return (hasOwn ? learned.apart : learned).bottleneck;
+}
+
+/** Directions rounded so far: each is rounded by itself, so a larger size goes on from a smaller one. */
+const ROUNDED = new WeakMap<Bottleneck, Tensor>();
+
+function firstRounded(
+  bottleneck: Bottleneck,
+  values: Float64Array,
+  rows: number,
+  cols: number,
+  replacedIn: (row: number) => Float64Array,
+): Tensor {
+  let known = ROUNDED.get(bottleneck);
+  const done = known?.rows ?? 0;
+  if (known === undefined || done < rows) {
+    const more = roundRows(values.subarray(done * cols), rows - done, cols, (row) => replacedIn(done + row));
+    known = known === undefined ? more : joinedRows(known, more);
+    ROUNDED.set(bottleneck, known);
+  }
+  return Object.freeze({
+    ...known,
+    rows,
+    scales: known.scales.slice(0, 4 * rows),
+    data: known.data.slice(0, rows * cols),
+  });
+}
+
+function joinedRows(first: Tensor, second: Tensor): Tensor {
+  const rows = first.rows + second.rows;
+  const scales = new Uint8Array(4 * rows);
+  scales.set(first.scales);
+  scales.set(second.scales, 4 * first.rows);
+  const data = new Uint8Array(rows * first.cols);
+  data.set(first.data);
+  data.set(second.data, first.data.length);
+  return Object.freeze({ ...first, rows, scales, data });
+}
+
 function makeFactors(learned: Learned, size: Size, round: Round): Factors {
   const { covariance, layout } = learned;
   const { order, basisCount, hasOwn } = size;
   const p = layout.channelCount * layout.featureCount;
   const exponents = featureExponents(covariance, p);
-  const scaled = (hasOwn ? learned.apart : learned).bottleneck.directions.slice(0, order * p);
-  for (let at = 0; at < scaled.length; at++) scaled[at] *= 2 ** -exponents[at % p];
+  const scaled = bottleneckOf(learned, size).directions.slice(0, order * p);
+  const down = powersOf(exponents, -1);
+  for (let k = 0, at = 0; k < order; k++) for (let f = 0; f < p; f++, at++) scaled[at] *= down[f];
   const bottleneck = round('bottleneck', scaled, order, p, () => alike(learned, exponents, null));
-  const directions = bottleneck.map((value, at) => value * 2 ** exponents[at % p]);
+  const up = powersOf(exponents, 1);
+  const directions = bottleneck.slice();
+  for (let k = 0, at = 0; k < order; k++) for (let f = 0; f < p; f++, at++) directions[at] *= up[f];
   const moments = stateMoments(directions, order, covariance, hasOwn ? learned.apart.rest : learned.map, layout);
   const full = fullReadout(moments, order, layout);
   const found = hasOwn ? learned.curves : findCurves(full, moments.covariance, order, layout);
@@ -140,6 +185,11 @@ function makeFactors(learned: Learned, size: Size, round: Round): Factors {
   const readout = round('readout', coefficients, layout.signalCount * basisCount, order, () => states);
   const small = { ...size, exponents, bottleneck, readout, horizonBasis, own: new Float64Array(0) };
   return hasOwn ? { ...small, own: ownPart(learned, small, directions, round) } : small;
+}
+
+/** 2^exponent, or one over it. */
+function powersOf(exponents: Int8Array, sign: 1 | -1): Float64Array {
+  return Float64Array.from(exponents, (exponent) => 2 ** (sign * exponent));
 }
 
 /** (ny·r × (1 + nu)·F) what each signal's own features add to what the state gives, on the curves as they stand. */
@@ -256,12 +306,14 @@ function addOwnMap({ own, basisCount: r, horizonBasis, exponents }: Factors, lay
   const { signalCount: ny, steps } = layout;
   for (let i = 0; i < ny; i++) {
     const chosen = ownFeatures(layout, i);
-    chosen.forEach((f, a) => {
+    for (let a = 0; a < chosen.length; a++) {
+      const scale = 2 ** exponents[chosen[a]];
+      const to = (chosen[a] * ny + i) * steps;
       for (let h = 0; h < steps; h++) {
         let sum = 0;
         for (let k = 0; k < r; k++) sum += horizonBasis[h * r + k] * own[(i * r + k) * chosen.length + a];
-        out[(f * ny + i) * steps + h] += sum * 2 ** exponents[f];
+        out[to + h] += sum * scale;
       }
-    });
+    }
   }
 }

@@ -82,6 +82,16 @@ describe('roundedFactors', () => {
     }
   });
 
+  it('gives a size the same tensors, whichever sizes were rounded before', () => {
+    const fresh = (): Learned => ({ ...learned, bottleneck: { ...learned.bottleneck } });
+    const size = (order: number) => ({ order, basisCount: 3, hasOwn: false });
+    const [rising, falling] = [fresh(), fresh()];
+    const up = [2, 3, 6].map((order) => roundedFactors(rising, size(order)));
+    const down = [6, 3, 2].map((order) => roundedFactors(falling, size(order))).reverse();
+    expect(up).toEqual([2, 3, 6].map((order) => roundedFactors(fresh(), size(order))));
+    expect(down).toEqual(up);
+  });
+
   it('writes down exactly the factors it was judged with', () => {
     for (const name of ['bottleneck', 'readout', 'horizonBasis'] as const) {
       expect(Array.from(dequantise(tensors[name]))).toEqual(Array.from(factors[name]));
