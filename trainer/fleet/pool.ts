@@ -3,6 +3,7 @@
  * all on demand. A worker that dies fails the one site it had.
  */
 import { Piscina } from 'piscina';
+import { compiledFile } from '../compiled-file.ts';
 import type { FleetNote, FleetOutcome, FleetTask } from './worker.ts';
 
 /** The workers of one run. */
@@ -10,12 +11,6 @@ export interface FleetPool {
   run(task: FleetTask): Promise<FleetOutcome>;
   /** Stops everything at once; tasks under way end as failed. */
   stop(): Promise<void>;
-}
-
-/** Node reads no TypeScript, so from the sources (tests) the worker is that of the last build. */
-function workerFile(): URL {
-  if (import.meta.url.endsWith('.ts')) return new URL('../dist/fleet/worker.js', import.meta.url);
-  return new URL('./worker.js', import.meta.url);
 }
 
 /** How to start it. */
@@ -33,7 +28,7 @@ export interface PoolShape {
  * onNote  told what a worker begins to do
  */
 export function startPool(
-  { threads, heapMb, workerFile: file = workerFile() }: PoolShape,
+  { threads, heapMb, workerFile: file = compiledFile('fleet/worker.js') }: PoolShape,
   onNote: (note: FleetNote) => void,
 ): FleetPool {
   const pool = new Piscina<FleetTask, FleetOutcome>({

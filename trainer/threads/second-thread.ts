@@ -4,18 +4,13 @@
  */
 import { availableParallelism } from 'node:os';
 import { isMainThread, Worker } from 'node:worker_threads';
+import { compiledFile } from '../compiled-file.ts';
 import { TrainError, type TrainErrorCode } from '../errors.ts';
 import type { Answered, Asked, Problem, Requests } from './requests.ts';
 
 /** Whether one gains anything here. */
 export function hasSecondCore(): boolean {
   return isMainThread && availableParallelism() > 1;
-}
-
-/** Node reads no TypeScript, so from the sources (tests) the worker is that of the last build. */
-function workerFile(): URL {
-  if (import.meta.url.endsWith('.ts')) return new URL('../dist/threads/worker.js', import.meta.url);
-  return new URL('./worker.js', import.meta.url);
 }
 
 /** Chunks are outside the heap, which knows little of their size: a small young heap lets go of them sooner. */
@@ -34,7 +29,7 @@ export class SecondThread {
   #death: Error | null = null;
 
   /** Of another file, for tests of threads that die. */
-  constructor(file: URL = workerFile()) {
+  constructor(file: URL = compiledFile('threads/worker.js')) {
     this.#worker = new Worker(file, { resourceLimits: { maxYoungGenerationSizeMb: YOUNG_MB } });
     this.#worker.on('message', (answered: Answered) => this.#settle(answered));
     this.#worker.on('error', (error: Error & { code?: string }) => this.#die(deathOf(error)));
