@@ -25,6 +25,6 @@ export function writeFleet(folder: string, names: readonly string[]): void {
   for (const [k, name] of names.entries()) {
     mkdirSync(join(folder, name), { recursive: true });
     writeFileSync(join(folder, name, 'site.yaml'), fleetSite(name));
-    writeFileSync(join(folder, name, 'log.csv'), fleetLog(k + 1));
+    writeFileSync(join(folder, name, 'log.csv'), fleetLog(k + 1, 180));
   }
 }
