@@ -8,7 +8,7 @@ import { join } from 'node:path';
 import type { Site } from '@stillwell/protocol';
 import type { NewFile } from '@stillwell/runtime/files';
 import { candidateFiles } from './candidate-files.ts';
-import { FACTORS_FILE, FactorsKeeper, factorsNotes } from './factors/keeper.ts';
+import { FACTORS_FILE, FactorsKeeper, factorsNotes, isAffordable } from './factors/keeper.ts';
 import type { FitOptions } from './fit-options.ts';
 import { findFiles } from './history/find-files.ts';
 import { type LongHistory, loadLong } from './history/long.ts';
@@ -17,7 +17,7 @@ import { type FitResult, fit } from './pipeline.ts';
 import type { Progress } from './progress.ts';
 import { FactorsBeside } from './threads/factors-beside.ts';
 import { JudgingBeside } from './threads/judging-beside.ts';
-import { hasSecondCore, SecondThread } from './threads/second-thread.ts';
+import { hasSecondCore, paysSecondThread, SecondThread } from './threads/second-thread.ts';
 import type { TimeSpan } from './time-option.ts';
 
 /** Bytes of the smallest files, columnar ones, that hold a long history of a few signals. */
@@ -80,8 +80,11 @@ export async function fitSite(job: FitSiteJob, watch: FitSiteWatch): Promise<Fit
   };
   try {
     const loaded = await load(job, watch.reading, begun);
-    if (loaded.older === null) await second?.end();
-    return await fitLoaded(job, watch, loaded, keeper);
+    if (loaded.older === null) {
+      if (mayHaveSecond && paysSecondThread(loaded.series.ticks * loaded.series.values.length)) begun();
+      else await second?.end();
+    }
+    return await fitLoaded(job, watch, loaded, keeper, second);
   } finally {
     await second?.end();
   }
@@ -92,12 +95,13 @@ async function fitLoaded(
   watch: FitSiteWatch,
   loaded: LongHistory,
   keeper: FactorsKeeper | FactorsBeside,
+  second: SecondThread | null,
 ): Promise<FittedSite> {
   const { series, survey, lattices, older } = loaded;
-  const isBeside = older !== null && keeper instanceof FactorsBeside;
-  const earlier = isBeside ? { earlierToCome: keeper.earlier() } : { earlier: older && (await keeper.earlier()) };
-  const closing = isBeside ? keeper.close(series) : null;
-  const judging = closing === null ? null : new JudgingBeside(closing);
+  const hasEarlier = older !== null && isAffordable(site);
+  const earlier = hasEarlier ? { earlierToCome: Promise.resolve(keeper.earlier()) } : {};
+  const closing = keeper instanceof FactorsBeside ? keeper.close(series, older === null) : null;
+  const judging = closing && new JudgingBeside(older === null && second !== null ? second : closing);
   const result = await fit(
     { series, site, survey, lattices, ...earlier },
     { ...options, progress: (name) => watch.step(name) },

@@ -133,8 +133,7 @@ export async function fit(
   clock.lap('finding what the forecasts rest on');
   const rest = checks === undefined ? reliance(model, input.series, judged) : (await checks).reliance;
   clock.lap('writing the candidate');
-  const all = options.useAll ? learnFromAll(input.series, prepared, small) : null;
-  const parts = all ?? small.parts;
+  const parts = { ...small.parts, ...small.all };
   const document = encodeBundle(composeBundle({ ...parts, judge: judgeTable(cast, verdicts, options.override) }));
   const bundle = decodeBundle(document);
   return Object.freeze({
@@ -154,7 +153,7 @@ export async function fit(
       ...prepared.warnings,
       ...taught.warnings,
       ...small.plans.warnings,
-      ...(options.useAll && all === null ? [NOT_FROM_ALL] : []),
+      ...(options.useAll && small.all === null ? [NOT_FROM_ALL] : []),
     ],
     timings: clock.laps(),
   });
@@ -168,7 +167,11 @@ interface Small {
   readonly plans: Plans;
   /** The same model without rounding, with the same calibration. */
   readonly float: Model;
+  /** What replaces the parts where it was learned once more from everything; null: they stay. */
+  readonly all: LearnedAgain | null;
 }
+
+type LearnedAgain = Pick<Composition, 'around' | 'sections' | 'response' | 'learnedToTick'>;
 
 async function shrink(
   input: FitInput,
@@ -215,10 +218,12 @@ async function shrink(
   });
   const { candidate } = choice;
   const plans = learnPlans(candidate, prepared, split.calibrate.toTick - series.firstTick, planned);
+  // While the bounds may still be worked out beside.
+  const all = options.useAll ? learnFromAll(input, prepared, around, candidate, plans) : null;
   const calibration = await (begun.get(candidate)?.() ?? settle(candidate.rounded, prepared.calm, span, wanted));
   const parts = { ...partsOf(candidate.sections, candidate.settled), calibration, response: plans.response?.tensors };
   const bundle = composeBundle(parts);
-  return { choice, bundle, parts, plans, float: withCalibration(candidate.float, calibration) };
+  return { choice, bundle, parts, plans, float: withCalibration(candidate.float, calibration), all };
 }
 
 function siteLimits(site: FitInput['site']): AskedLimit[] {
@@ -229,13 +234,19 @@ function siteLimits(site: FitInput['site']): AskedLimit[] {
  * Learns once more from every tick, at the size and penalties already judged; bounds stay as calibrated. Null where the
  * numbers of all ticks allow no model: what was judged is still good.
  */
-function learnFromAll(series: Series, prepared: Prepared, { choice, parts, plans }: Small): Composition | null {
+function learnFromAll(
+  { series, site }: FitInput,
+  prepared: Prepared,
+  around: Surroundings,
+  candidate: Candidate,
+  plans: Plans,
+): LearnedAgain | null {
   try {
-    const again = choice.candidate.again(series.ticks);
+    const again = candidate.again(series.ticks);
     const { response } = learnPlans(again, prepared, series.ticks, plans.response === null ? [] : plans.planned);
     const learnedToTick = series.firstTick + series.ticks;
-    const around = { ...parts.around, scalings: scalingsForAll(prepared, parts.input.site) };
-    return { ...parts, around, sections: again.sections, response: response?.tensors, learnedToTick };
+    const scaled = { ...around, scalings: scalingsForAll(prepared, site) };
+    return { around: scaled, sections: again.sections, response: response?.tensors, learnedToTick };
   } catch (error) {
     if (error instanceof TrainError && error.code === 'fit') return null;
     throw error;

@@ -115,7 +115,8 @@ describe('options that do not go together', () => {
     ['stillwell fit --history a.csv --out x', /got --history alone, without --site/],
     ['stillwell fit --fleet f --site site.yaml --out x', /--site: expected no --fleet beside it/],
     ['stillwell fit --fleet f --override because --out x', /--override: .*write override into the entry of that site/],
-    ['stillwell fit --site s --history h --threads 2 --out x', /--threads: expected --fleet beside it/],
+    ['stillwell fit --site s --history h --threads 3 --out x', /--threads: expected 1 or 2 for a single site, got 3/],
+    ['stillwell fit --site s --history h --fresh --out x', /--fresh: expected --fleet beside it/],
     [
       'stillwell fit --fleet nowhere --out x',
       /nowhere: expected a fleet file, or a folder .*, got no such file; check the path/,

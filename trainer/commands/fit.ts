@@ -56,7 +56,7 @@ export function fitCommand(): Command {
     .option('--fleet <path>', 'instead of both: a fleet file, or a folder with one sub-folder a site')
     .option(
       '--threads <count>',
-      'sites fitted at the same time; as many as cores and memory allow',
+      'threads of a site, 1 or 2; with --fleet sites fitted at the same time; as many as cores and memory allow',
       wholeNumber(1, 256),
     )
     .option('--fresh', 'with --fleet: fit sites again whose inputs and options are unchanged', false)
@@ -93,14 +93,13 @@ async function run(options: FitCommandOptions): Promise<void> {
       `fit: expected --site and --history, or --fleet, got ${had}; add --help for an example`,
     );
   }
-  for (const option of ['threads', 'fresh'] as const) {
-    if (options[option])
-      throw new TrainError('options', `--${option}: expected --fleet beside it, got a single site; leave it out`);
-  }
+  if (options.fresh)
+    throw new TrainError('options', '--fresh: expected --fleet beside it, got a single site; leave it out');
+  const threads = threadsOfOne(options.threads);
   const site = readSite(siteFile);
   const resumeFile = join(options.out, RESUME_FILE);
   const say = (sentence: string): void => void process.stderr.write(`${sentence}\n`);
-  const job = { ...jobOf(site, history, options.out, options), resumeFile, say };
+  const job = { ...jobOf(site, history, options.out, options), resumeFile, say, ...threads };
   const { loaded, result, files, notes } = await withRoom(options.out, async () => {
     const fitted = await fitSite(job, stepsShown());
     writeOutputs(fitted.files);
@@ -113,6 +112,12 @@ async function run(options: FitCommandOptions): Promise<void> {
       : `${fitSummary(result)}${noted('Note', notes)}${noted('Survey', surveyNotes(loaded.survey))}\n` +
           `${writtenText(options.out, files)}\n${ADVISORY}\n`,
   );
+}
+
+/** Of a single site; absent where nothing was asked for. */
+function threadsOfOne(threads: number | undefined): Pick<FitSiteJob, 'threads'> {
+  if (threads === undefined || threads === 1 || threads === 2) return threads === undefined ? {} : { threads };
+  throw new TrainError('options', `--threads: expected 1 or 2 for a single site, got ${threads}; more are for --fleet`);
 }
 
 async function runFleet(options: FitCommandOptions, fleet: string): Promise<void> {

@@ -36,6 +36,7 @@ interface RefitCommandOptions {
   readonly useAll: boolean;
   readonly kind: FitOptions['kind'];
   readonly seed: number;
+  readonly threads?: 1 | 2;
   readonly override?: string;
   readonly json: boolean;
 }
@@ -64,6 +65,7 @@ export function refitCommand(): Command {
     .option('--no-use-all', 'ship the model as judged instead of learning once more from everything')
     .addOption(kindOption())
     .option('--seed <number>', 'seed of everything drawn', wholeNumber(0, 2 ** 32 - 1), 1)
+    .option('--threads <count>', 'threads, 1 or 2; as many as there are cores', wholeNumber(1, 2))
     .option('--override <reason>', 'why it may be sealed though it shows no skill; stands in the bundle', reason)
     .option('--json', 'the result as JSON', false)
     .addHelpText(
@@ -82,6 +84,7 @@ async function refitInto(options: RefitCommandOptions): Promise<void> {
   const previous = options.previous === undefined ? null : openProvenFile(options.previous);
   const span = timeSpan(options, site.timeZone);
   const { fromMs, untilMs } = span;
+  const { halfLife, threads, out } = options;
   const [{ readArchive }, { refit }] = await Promise.all([import('../desk/archive.ts'), import('../refit/refit.ts')]);
   const factors = await factorsOf(options, site);
   const archive = await readArchive(options.archive, site.site, factors?.toTick);
@@ -93,11 +96,12 @@ async function refitInto(options: RefitCommandOptions): Promise<void> {
       archive,
       files,
       factors,
-      halfLifeTicks: halfLifeTicks(options.halfLife, site),
+      halfLifeTicks: halfLifeTicks(halfLife, site),
       site,
       previous,
       ...(fromMs === undefined ? {} : { fromTick: Math.ceil(fromMs / site.tickMs) }),
       ...(untilMs === undefined ? {} : { toTick: Math.ceil(untilMs / site.tickMs) }),
+      ...(threads === undefined ? {} : { threads }),
     },
     {
       seed: options.seed,
@@ -110,13 +114,11 @@ async function refitInto(options: RefitCommandOptions): Promise<void> {
       override: options.override ?? null,
       progress: () => progress.update(++steps, null),
     },
+    (absorbed, fit) => candidateFiles(out, site, absorbed.survey, fit),
   );
   progress.end();
-  const { factors: bytes } = result;
-  const written = [
-    ...(await candidateFiles(options.out, site, result.absorbed.survey, result.fit)),
-    ...(bytes === null ? [] : [{ path: join(options.out, FACTORS_FILE), bytes }]),
-  ];
+  const { factors: bytes, files: candidate } = result;
+  const written = [...candidate, ...(bytes === null ? [] : [{ path: join(out, FACTORS_FILE), bytes }])];
   writeOutputs(written);
   process.stdout.write(
     options.json

@@ -4,10 +4,12 @@
  */
 import type { OpenDocument } from '../bundle-file.ts';
 import type { Series } from '../history/series.ts';
-import { type Hindcast, hindcast } from '../judge/hindcast.ts';
+import { hindcast } from '../judge/hindcast.ts';
 import { meanOf } from '../judge/scores.ts';
 import { learnedSpans } from '../learned-spans.ts';
 import type { FitResult } from '../pipeline.ts';
+import type { JudgingBeside } from '../threads/judging-beside.ts';
+import type { Cast } from '../threads/requests.ts';
 
 /** Ratios of mean squared error, new over previous; below 1 the new one is better. */
 export interface Comparison {
@@ -34,13 +36,20 @@ const EQUAL_BAND = 0.01;
 const MUCH_WORSE = 1.1;
 
 /**
- * Scores both on the judged span of the new fit.
+ * Scores both on the judged span of the new fit; the previous one on the thread `beside`, where there is one.
  *
  * shapes  the previous bundle has the same channels as the series
  */
-export function compare(result: FitResult, previous: OpenDocument, series: Series): Comparison {
+export async function compare(
+  result: FitResult,
+  previous: OpenDocument,
+  series: Series,
+  beside: JudgingBeside | null = null,
+): Promise<Comparison> {
   const units = previous.bundle.channels.map((channel) => channel.unit);
-  const old = hindcast(previous.model, series, { ...result.judged, learn: null, clipAs: result.model }, units);
+  const span = { ...result.judged, learn: null, clipAs: result.model };
+  const old = await (beside?.cast(previous.model, series, span, units) ??
+    hindcast(previous.model, series, span, units));
   const fresh = result.hindcast;
   const signals = fresh.signals.map((signal, i) => ({
     signal,
@@ -74,14 +83,13 @@ export function overall(ratios: readonly number[]): { readonly ratio: number; re
 }
 
 /** Both horizons may differ; the steps that both forecast are compared. */
-function ratioOf(fresh: Hindcast, old: Hindcast, signal: number): number {
+function ratioOf(fresh: Cast, old: Cast, signal: number): number {
   const steps = Math.min(fresh.horizon, old.horizon);
-  const mean = (cast: Hindcast): number =>
-    meanOf(cast.mse.subarray(signal * cast.horizon, signal * cast.horizon + steps));
+  const mean = (cast: Cast): number => meanOf(cast.mse.subarray(signal * cast.horizon, signal * cast.horizon + steps));
   return mean(fresh) / mean(old);
 }
 
-function meanCoverage(cast: Hindcast, signal: number): number {
+function meanCoverage(cast: Cast, signal: number): number {
   return meanOf(cast.coverage.subarray(signal * cast.horizon, (signal + 1) * cast.horizon));
 }
 

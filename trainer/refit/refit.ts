@@ -3,6 +3,7 @@
  * one, and the candidate is held against the bundle that serves.
  */
 import { describeSchemaDifference, type Site } from '@stillwell/protocol';
+import type { NewFile } from '@stillwell/runtime/files';
 import type { OpenDocument } from '../bundle-file.ts';
 import type { Archive } from '../desk/archive.ts';
 import { TrainError } from '../errors.ts';
@@ -13,6 +14,9 @@ import { LONG_FROM, RECENT_TICKS } from '../history/long-limits.ts';
 import type { Series } from '../history/series.ts';
 import { sliceSeries } from '../history/slice-series.ts';
 import { type FitOptions, type FitResult, fit } from '../pipeline.ts';
+import { FactorsBeside } from '../threads/factors-beside.ts';
+import { JudgingBeside } from '../threads/judging-beside.ts';
+import { hasSecondCore, paysSecondThread, SecondThread } from '../threads/second-thread.ts';
 import { type Absorbed, absorb } from './absorb.ts';
 import { type Comparison, compare } from './compare.ts';
 
@@ -30,6 +34,8 @@ export interface RefitInput {
   /** Ticks fromTick <= n < toTick of archive and files are used. */
   readonly fromTick?: number;
   readonly toTick?: number;
+  /** 1: nothing is done on a second thread; absent: as the machine has cores, and never where this is a worker itself. */
+  readonly threads?: 1 | 2;
 }
 
 /** A candidate, and what it came from. */
@@ -40,7 +46,12 @@ export interface RefitResult {
   readonly comparison: Comparison | null;
   /** The factors of everything, for the next refit; null where the site has too many signals for them. */
   readonly factors: Uint8Array | null;
+  /** What whenFitted made. */
+  readonly files: readonly NewFile[];
 }
+
+/** Makes what is to be written of the fit; it is not kept waiting by what is still compared. */
+export type WhenFitted = (absorbed: Absorbed, fit: FitResult) => Promise<readonly NewFile[]>;
 
 /** Shares as FitOptions; null: chosen so that the newest readings calibrate and judge, and most of them are learned. */
 export interface RefitOptions extends Omit<FitOptions, 'learnShare' | 'calibrateShare'> {
@@ -57,34 +68,64 @@ const JUDGE = 0.2;
  *
  * throws  TrainError 'archive', 'history', 'bundle' or 'options' in one sentence
  */
-export async function refit(input: RefitInput, options: RefitOptions): Promise<RefitResult> {
-  const { site, previous } = input;
+export async function refit(
+  input: RefitInput,
+  options: RefitOptions,
+  whenFitted: WhenFitted = async () => [],
+): Promise<RefitResult> {
+  const { site, previous, factors, halfLifeTicks } = input;
   const difference = previous === null ? null : describeSchemaDifference(previous.bundle, site);
   if (difference !== null) {
     throw new TrainError('bundle', `--previous was made for other readings than the site file declares: ${difference}`);
   }
-  const absorbed = absorb(cut(input.archive, newerThan(input)), input.files, site);
-  const keeper = new FactorsKeeper(site, input.halfLifeTicks, input.factors);
+  const archive = cut(input.archive, newerThan(input));
+  // Up, with the factors in it, when archive and files are joined.
+  const second = wantsSecond(input, archive) ? new SecondThread() : null;
+  try {
+    const keeper =
+      second === null
+        ? new FactorsKeeper(site, halfLifeTicks, factors)
+        : new FactorsBeside(second, site, halfLifeTicks, factors);
+    const judging = second && new JudgingBeside(second, previous !== null);
+    return await refitWith(keeper, judging, absorb(archive, input.files, site), input, options, whenFitted);
+  } finally {
+    await second?.end();
+  }
+}
+
+async function refitWith(
+  keeper: FactorsKeeper | FactorsBeside,
+  judging: JudgingBeside | null,
+  absorbed: Absorbed,
+  { site, previous, factors }: RefitInput,
+  options: RefitOptions,
+  whenFitted: WhenFitted,
+): Promise<RefitResult> {
   const { older, window } = cutLong(absorbed.series);
-  if (older !== null) keeper.sink().take(older);
+  if (older !== null) await keeper.sink().take(older);
   const shares = sharesFor({ series: window, newFromTick: absorbed.newFromTick }, site.horizon);
+  const learnShare = options.learnShare ?? shares.learnShare;
+  const calibrateShare = options.calibrateShare ?? shares.calibrateShare;
+  const hasEarlier = older !== null || factors !== null;
+  const earlier = hasEarlier ? { earlierToCome: Promise.resolve(keeper.earlier()) } : {};
+  const closing = keeper instanceof FactorsBeside ? keeper.close(window, true) : null;
+  const { survey, lattices } = absorbed;
   const result = await fit(
-    {
-      series: window,
-      earlier: keeper.earlier(),
-      site,
-      survey: absorbed.survey,
-      lattices: absorbed.lattices,
-      previous: previous?.document ?? null,
-    },
-    {
-      ...options,
-      learnShare: options.learnShare ?? shares.learnShare,
-      calibrateShare: options.calibrateShare ?? shares.calibrateShare,
-    },
+    { series: window, ...earlier, site, survey, lattices, previous: previous?.document ?? null },
+    { ...options, learnShare, calibrateShare },
+    judging,
   );
-  const comparison = previous === null ? null : compare(result, previous, window);
-  return { absorbed, fit: result, comparison, factors: keeper.close(window) };
+  const comparing = previous && compare(result, previous, window, judging);
+  // Where making the files fails, nobody waits for it.
+  comparing?.catch(() => {});
+  const files = await whenFitted(absorbed, result);
+  const bytes = await (closing ?? keeper.close(window));
+  return { absorbed, fit: result, comparison: await comparing, factors: bytes, files };
+}
+
+function wantsSecond({ threads, factors }: RefitInput, { ticks, channels }: Archive): boolean {
+  const mayHaveSecond = threads === undefined ? hasSecondCore() : threads > 1;
+  return mayHaveSecond && paysSecondThread(ticks.length * channels.length + (factors?.sums.lagged.length ?? 0));
 }
 
 /** What is asked for, and of that only what the factors have not taken in. */

@@ -4,6 +4,7 @@
  */
 import type { Site } from '@stillwell/protocol';
 import { earlierOf } from '../factors/earlier.ts';
+import type { Factors } from '../factors/factors.ts';
 import { decodeFactors } from '../factors/file.ts';
 import type { OlderSink } from '../history/older.ts';
 import type { Series } from '../history/series.ts';
@@ -22,9 +23,10 @@ export class FactorsBeside {
   /** Asked for as soon as nothing follows, long before it is wanted. */
   #earlier: Promise<Uint8Array | null> | null = null;
 
-  constructor(thread: SecondThread, site: Site, halfLifeTicks: number | null) {
+  /** From nothing, or on from factors of the same site, whose half-life stays. */
+  constructor(thread: SecondThread, site: Site, halfLifeTicks: number | null, start: Factors | null = null) {
     this.#thread = thread;
-    this.#waiting.push(thread.ask('begin', { site, halfLifeTicks }));
+    this.#waiting.push(thread.ask('begin', { site, halfLifeTicks, start }));
   }
 
   /** Takes in what is older. */
@@ -50,9 +52,14 @@ export class FactorsBeside {
     return earlier;
   }
 
-  /** Takes in the window and gives the file's bytes; null where the site goes without. The thread ends itself, with all its memory. */
-  close(window: Series): Promise<Uint8Array | null> {
-    return this.#thread.ask('close', window);
+  /**
+   * Takes in the window and gives the file's bytes; null where the site goes without. The thread then ends itself, with all
+   * its memory, unless it `goesOn` with something else.
+   */
+  close(window: Series, goesOn = false): Promise<Uint8Array | null> {
+    const bytes = this.#thread.ask('close', window);
+    if (!goesOn) this.#thread.ask('end', null);
+    return bytes;
   }
 
   async #take(older: Series): Promise<void> {

@@ -1,33 +1,39 @@
 /**
- * Judging on a second thread of a fit, begun when that of the factors has ended, so that memory holds one of them: what is
- * settled of the first kind while others are tried, and the checks of the chosen one while it is replayed. The same work,
- * so the same results.
+ * Judging on a second thread of a fit: of a long one begun when that of the factors has ended, so that memory holds one of
+ * them; of a short one on the same thread. What is settled of the first kind while others are tried, the checks of the chosen
+ * one while it is replayed, and what a refit compares it with while its report is made. The same work, so the same results.
  */
 import type { Bundle } from '@stillwell/protocol';
 import type { Model } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
+import type { HindcastSpan } from '../judge/hindcast.ts';
 import type { Settled } from '../judge/settle.ts';
 import { settleStuck } from '../judge/stuck-guard.ts';
 import { withCalibration } from '../kinds/candidate.ts';
 import type { Calibration } from '../quantise/float-model.ts';
 import type { TickSpan } from '../span.ts';
-import type { Checks } from './requests.ts';
+import type { Cast, Checks } from './requests.ts';
 import { SecondThread } from './second-thread.ts';
 
 /** Of one fit; first of all it is begun. */
 export class JudgingBeside {
-  readonly #before: Promise<unknown>;
+  readonly #before: Promise<unknown> | SecondThread;
+  readonly #compares: boolean;
   #thread: SecondThread | null = null;
 
-  /** After the last answer of the thread before it. */
-  constructor(before: Promise<unknown>) {
+  /**
+   * After the last answer of the thread before it, or on one that goes on. With `compares` the thread stays up after the
+   * checks, for `cast`.
+   */
+  constructor(before: Promise<unknown> | SecondThread, compares = false) {
     this.#before = before;
+    this.#compares = compares;
   }
 
-  /** Starts the thread. */
+  /** Starts the thread, or has it load what follows needs. */
   async begin(): Promise<void> {
-    await this.#before;
-    this.#thread = new SecondThread();
+    if (!(this.#before instanceof SecondThread)) await this.#before;
+    this.#thread = this.#before instanceof SecondThread ? this.#before : new SecondThread();
     this.#thread.ask('judging', null);
   }
 
@@ -49,12 +55,19 @@ export class JudgingBeside {
 
   /** As `auditRounding` of a long judged part, and `reliance`. */
   check(bundle: Bundle, float: Model, series: Series, judged: TickSpan): Promise<Checks> {
-    return this.#begun().ask('check', { bundle, float, series: shared(series), judged });
+    const checks = this.#begun().ask('check', { bundle, float, series: shared(series), judged });
+    if (!this.#compares) this.#begun().ask('end', null);
+    return checks;
   }
 
-  /** Ends the thread, whatever it is at. */
+  /** As `hindcast`. */
+  cast(model: Model, series: Series, span: HindcastSpan, units: readonly string[]): Promise<Cast> {
+    return this.#begun().ask('cast', { model, series: shared(series), span, units });
+  }
+
+  /** Ends the thread, whatever it is at; not one that was there before. */
   async end(): Promise<void> {
-    await this.#thread?.end();
+    if (this.#thread !== this.#before) await this.#thread?.end();
   }
 
   #begun(): SecondThread {

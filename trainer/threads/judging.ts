@@ -2,6 +2,7 @@
 import { modelFromBundle } from '@stillwell/runtime/filter';
 import { calibrate } from '../judge/calibrate.ts';
 import { type LearnedCrossing, learnCrossing } from '../judge/crossing-table.ts';
+import { hindcast } from '../judge/hindcast.ts';
 import { scoreEvery } from '../judge/origin-budget.ts';
 import { reliance } from '../judge/reliance.ts';
 import { standingAt } from '../judge/replay.ts';
@@ -34,4 +35,10 @@ export function crossed(): LearnedCrossing {
 export function checked({ bundle, float, series, judged }: Requests['check']['given']): Requests['check']['got'] {
   const model = modelFromBundle(bundle);
   return { audit: auditRounding(model, float, series, judged, null), reliance: reliance(model, series, judged) };
+}
+
+/** Answers 'cast'. */
+export function cast({ model, series, span, units }: Requests['cast']['given']): Requests['cast']['got'] {
+  const { horizon, mse, coverage } = hindcast(model, series, span, units);
+  return { horizon, mse, coverage };
 }

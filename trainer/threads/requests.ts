@@ -1,8 +1,10 @@
 /** What the main thread of a fit may ask of its second thread, and what comes back: plain values that travel as they are. */
 import type { Bundle, Site } from '@stillwell/protocol';
 import type { Model } from '@stillwell/runtime/filter';
+import type { Factors } from '../factors/factors.ts';
 import type { Series } from '../history/series.ts';
 import type { LearnedCrossing } from '../judge/crossing-table.ts';
+import type { Hindcast, HindcastSpan } from '../judge/hindcast.ts';
 import type { Reliance } from '../judge/reliance.ts';
 import type { Standing } from '../judge/replay.ts';
 import type { Settled } from '../judge/settle.ts';
@@ -11,12 +13,15 @@ import type { Calibration } from '../quantise/float-model.ts';
 import type { TickSpan } from '../span.ts';
 
 /**
- * By name: what goes with it, and the answer. Asked in this order: later ones use what earlier ones left. A thread for factors
- * ends with 'close', one for judging begins with 'judging' and ends with 'check'.
+ * By name: what goes with it, and the answer. Asked in this order: later ones use what earlier ones left. The thread of a
+ * long fit's factors ends before the one for judging begins, that of a short one goes on; the last request is 'end'.
  */
 export interface Requests {
-  /** Factors of a site from nothing; those begun before are forgotten. */
-  begin: { given: { readonly site: Site; readonly halfLifeTicks: number | null }; got: null };
+  /** Factors of a site from nothing, or on from others; those begun before are forgotten. */
+  begin: {
+    given: { readonly site: Site; readonly halfLifeTicks: number | null; readonly start: Factors | null };
+    got: null;
+  };
   /** A chunk of what is older. */
   take: { given: Series; got: null };
   /** All that is in, to go on from. */
@@ -40,6 +45,18 @@ export interface Requests {
     given: { readonly bundle: Bundle; readonly float: Model; readonly series: Series; readonly judged: TickSpan };
     got: Checks;
   };
+  /** Forecasts of another model over the judged part. */
+  cast: {
+    given: {
+      readonly model: Model;
+      readonly series: Series;
+      readonly span: HindcastSpan;
+      readonly units: readonly string[];
+    };
+    got: Cast;
+  };
+  /** Nothing follows. */
+  end: { given: null; got: null };
 }
 
 /** What the calibration part gives a model first. */
@@ -48,6 +65,9 @@ export interface Bounded {
   /** The model warmed up on what lies before that part; null where it is short. */
   readonly standing: Standing | null;
 }
+
+/** Of a hindcast, what two models are compared by. */
+export type Cast = Pick<Hindcast, 'horizon' | 'mse' | 'coverage'>;
 
 /** What is found of a chosen model beside its hindcast. */
 export interface Checks {

@@ -15,8 +15,8 @@ type Answers = {
 let keeper: FactorsKeeper | null = null;
 
 const ANSWERS: Answers = {
-  begin: ({ site, halfLifeTicks }) => {
-    keeper = new FactorsKeeper(site, halfLifeTicks);
+  begin: ({ site, halfLifeTicks, start }) => {
+    keeper = new FactorsKeeper(site, halfLifeTicks, start);
     return null;
   },
   take: (older) => {
@@ -37,6 +37,8 @@ const ANSWERS: Answers = {
   bounds: async (given) => (await judging()).bounded(given),
   crossings: async () => (await judging()).crossed(),
   check: async (given) => (await judging()).checked(given),
+  cast: async (given) => (await judging()).cast(given),
+  end: () => null,
 };
 
 function judging(): Promise<typeof import('./judging.ts')> {
@@ -67,9 +69,6 @@ function plain(details: Readonly<Record<string, unknown>>): Readonly<Record<stri
   return JSON.parse(JSON.stringify(details)) as Record<string, unknown>;
 }
 
-/** No other comes after one of these. */
-const LAST: ReadonlySet<keyof Requests> = new Set(['close', 'check']);
-
 /** Ends when all asked so far is answered. */
 let turn = Promise.resolve();
 
@@ -77,6 +76,6 @@ parentPort?.on('message', (asked: Asked) => {
   turn = turn.then(async () => {
     parentPort?.postMessage(await answer(asked));
     // The thread ends by itself, since the main one is busy and would hold its memory for long.
-    if (LAST.has(asked.what)) parentPort?.close();
+    if (asked.what === 'end') parentPort?.close();
   });
 });

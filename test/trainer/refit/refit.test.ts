@@ -1,6 +1,6 @@
 /** From an archive to a candidate: what is joined, what wins, and that a plant which has changed is learned anew. */
 import { bundleDigest, parseSite } from '@stillwell/protocol';
-import { describe, expect, test } from 'vitest';
+import { describe, expect, onTestFinished, test, vi } from 'vitest';
 import { openDocument } from '../../../trainer/bundle-file.ts';
 import type { Archive } from '../../../trainer/desk/archive.ts';
 import { decodeFactors } from '../../../trainer/factors/file.ts';
@@ -10,6 +10,7 @@ import { prepare } from '../../../trainer/history/load.ts';
 import { FIT_DEFAULTS, fit as learn } from '../../../trainer/pipeline.ts';
 import { absorb } from '../../../trainer/refit/absorb.ts';
 import { refit } from '../../../trainer/refit/refit.ts';
+import { SecondThread } from '../../../trainer/threads/second-thread.ts';
 import { seededNumbers } from '../../support/models.ts';
 
 const HOUR = 3_600_000;
@@ -172,4 +173,40 @@ test('factors stand in for the files they were made from, and go on with what is
   const next = decodeFactors(after.factors!, 'factors.swf');
   expect([next.fromTick, next.toTick, next.ticks]).toEqual([START, START + 4000, 4000]);
   expect(after.factors!.length).toBeLessThan(1.05 * whole.factors!.length);
+});
+
+test('a second thread changes nothing, and makes no one wait for what was made of the fit', {
+  timeout: 180_000,
+}, async () => {
+  const values = plant(11_000, 11_000);
+  const first = prepare(historyOf(values, 0, 2000), site);
+  const old = await learn(
+    { series: first.series, site, survey: first.survey, lattices: first.lattices },
+    { ...FIT_DEFAULTS, kind: 'linear' },
+  );
+  const factors = decodeFactors(new FactorsKeeper(site, null).close(first.series)!, 'factors.swf');
+  const { learnShare: _, calibrateShare: __, ...rest } = FIT_DEFAULTS;
+  const options = { ...rest, kind: 'linear' as const, useAll: true, learnShare: null, calibrateShare: null };
+  const around = {
+    archive: archiveOf(values, 0, 11_000),
+    site,
+    previous: openDocument(old.document),
+    halfLifeTicks: null,
+  };
+  const seen: unknown[] = [];
+  const asked = vi.spyOn(SecondThread.prototype, 'ask');
+  onTestFinished(() => asked.mockRestore());
+  for (const threads of [1, 2] as const) {
+    const { fit: result, ...refitted } = await refit(
+      { ...around, files: null, factors, threads },
+      options,
+      async () => [{ path: 'made', bytes: `${threads > 0}` }],
+    );
+    const { timings: _timings, ...all } = result;
+    seen.push({ ...refitted, ...all });
+    const whats = asked.mock.calls.map(([what]) => what);
+    expect(whats).toEqual(threads === 1 ? [] : ['begin', 'earlier', 'close', 'judging', 'cast']);
+  }
+  expect(seen[1]).toEqual(seen[0]);
+  expect(seen[0]).toMatchObject({ comparison: { seenByPrevious: 0 }, files: [{ path: 'made' }] });
 });

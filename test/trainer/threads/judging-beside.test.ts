@@ -1,6 +1,7 @@
 /** Judging on a second thread, which is that of the last build; `npm test` makes it first. The same work done here is the measure. */
 import { expect, it, onTestFinished } from 'vitest';
 import { modelFromBundle } from '../../../runtime/filter/index.ts';
+import { hindcast } from '../../../trainer/judge/hindcast.ts';
 import { reliance } from '../../../trainer/judge/reliance.ts';
 import { settle } from '../../../trainer/judge/settle.ts';
 import { tryDense } from '../../../trainer/kinds/dense.ts';
@@ -8,6 +9,7 @@ import { tryLinear } from '../../../trainer/kinds/linear.ts';
 import { FIT_DEFAULTS, fit as fitHistory } from '../../../trainer/pipeline.ts';
 import { auditRounding } from '../../../trainer/quantise/audit.ts';
 import { JudgingBeside } from '../../../trainer/threads/judging-beside.ts';
+import { SecondThread } from '../../../trainer/threads/second-thread.ts';
 import { attemptOf } from '../../support/attempt.ts';
 import { hourlySite, seriesOf, wanderingDays } from '../../support/history.ts';
 
@@ -55,6 +57,26 @@ it('checks as the main thread would', async () => {
     audit: auditRounding(model, float, SERIES, span, null),
     reliance: reliance(model, SERIES, span),
   });
+});
+
+it('forecasts with another model as the main thread would, also after the checks, on a thread that was there before', async () => {
+  const attempt = attemptOf(SERIES, H, 0.01);
+  const { rounded } = tryLinear(attempt);
+  const clipAs = { ...rounded, clipHigh: rounded.clipHigh.map((high) => high - 1) };
+  const span = { ...attempt.split.judged, learn: null, clipAs };
+  const second = new SecondThread();
+  onTestFinished(() => second.end());
+  const beside = new JudgingBeside(second, true);
+  await beside.begin();
+  const { bundle } = await fitHistory(
+    { series: SERIES, site: hourlySite(NAMES, H), survey: {}, lattices: NAMES.map(() => ({ step: 0.01, offset: 0 })) },
+    FIT_DEFAULTS,
+  );
+  await beside.check(bundle, rounded, SERIES, { fromTick: 2400, toTick: 3000 });
+  const { horizon, mse, coverage } = hindcast(rounded, SERIES, span, ['1', '1']);
+  expect(await beside.cast(rounded, SERIES, span, ['1', '1'])).toEqual({ horizon, mse, coverage });
+  await beside.end();
+  expect(await second.ask('judging', null)).toBeNull();
 });
 
 it('refuses as the main thread does', async () => {
