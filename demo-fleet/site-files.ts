@@ -2,7 +2,14 @@
  * The site files of the demo, as an engineer would write them: where each sensor publishes, how its payload reads, what
  * its limits are. Wells publish {"value", "time"} with ISO times, stores {"v", "t"} with milliseconds.
  */
-import { defaultWarnRule, formatSite, type PayloadReading, type Site } from '@stillwell/protocol';
+import {
+  AS_SENT,
+  defaultWarnRule,
+  documentPayload,
+  formatSite,
+  type PayloadReading,
+  type Site,
+} from '@stillwell/protocol';
 import { columnOf, type LogHabit } from './history-files.ts';
 import type { DemoSite } from './plants/sites.ts';
 
@@ -10,8 +17,8 @@ import type { DemoSite } from './plants/sites.ts';
 export type PayloadStyle = 'iso' | 'milliseconds';
 
 const READINGS: Readonly<Record<PayloadStyle, PayloadReading>> = {
-  iso: { kind: 'json', value: '/value', time: '/time' },
-  milliseconds: { kind: 'json', value: '/v', time: '/t' },
+  iso: documentPayload('json', '/value', '/time'),
+  milliseconds: documentPayload('json', '/v', '/t'),
 };
 
 /** A reading as its payload. */
@@ -77,6 +84,7 @@ export function siteText(description: SiteDescription): string {
     topic: readingTopic(description.name, one.name),
     payload: READINGS[description.style],
     unit: one.unit,
+    ...AS_SENT,
     resolution: one.resolution,
     range: one.range,
     aggregate: one.aggregate,

@@ -27,15 +27,14 @@ export const pointerTokens = (pointer: string): readonly string[] => {
 const INDEX = /^(?:0|[1-9]\d*)$/;
 
 /**
- * The value a pointer names in a document, undefined if there is none. Own properties only, so no token reaches a
+ * The value that tokens name in a document, undefined if there is none. Own properties only, so no token reaches a
  * prototype; '-' (after the last entry) names no value.
  *
- * throws  ProtocolError 'payload' if the text is no pointer
  * source  RFC 6901 section 4
  */
-export const resolvePointer = (document: unknown, pointer: string): unknown => {
+export const resolveTokens = (document: unknown, tokens: readonly string[]): unknown => {
   let value = document;
-  for (const token of pointerTokens(pointer)) {
+  for (const token of tokens) {
     if (Array.isArray(value)) value = INDEX.test(token) ? value[Number(token)] : undefined;
     else if (typeof value === 'object' && value !== null && Object.hasOwn(value, token)) {
       value = (value as Record<string, unknown>)[token];
@@ -43,3 +42,7 @@ export const resolvePointer = (document: unknown, pointer: string): unknown => {
   }
   return value;
 };
+
+/** The value a pointer names in a document. throws  ProtocolError 'payload' if the text is no pointer */
+export const resolvePointer = (document: unknown, pointer: string): unknown =>
+  resolveTokens(document, pointerTokens(pointer));

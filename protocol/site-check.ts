@@ -5,6 +5,7 @@ import { formatDuration } from './duration.ts';
 import type { Fault } from './issue.ts';
 import { MAX_CHANNELS, MAX_HORIZON } from './limits.ts';
 import type { Limits, Signal, Site } from './site.ts';
+import { conversionFaults } from './site-conversion-check.ts';
 import { warnFaults } from './site-warn.ts';
 
 const fault = (path: readonly PropertyKey[], text: string): Fault => ({ path, isUnknownKey: false, text });
@@ -104,7 +105,7 @@ const planFaults = (site: Site): readonly Fault[] => {
 export const crossFaults = (site: Site): readonly Fault[] => {
   const entries = entriesOf(site);
   const faults = [...horizonFaults(site), ...repeatFaults(entries), ...planFaults(site), ...warnFaults(site)];
-  for (const { signal, path } of entries) faults.push(...limitFaults(signal, path));
+  for (const { signal, path } of entries) faults.push(...limitFaults(signal, path), ...conversionFaults(signal, path));
   if (entries.length > MAX_CHANNELS) {
     faults.push(
       fault(['inputs'], `expected at most ${MAX_CHANNELS} signals and inputs together, got ${entries.length}`),

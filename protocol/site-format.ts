@@ -4,15 +4,11 @@
  */
 import type { Document } from 'yaml';
 import { formatDuration } from './duration.ts';
-import type { Input, PayloadReading, Signal, Site } from './site.ts';
+import type { Input, Signal, Site } from './site.ts';
 import { type Exclusion, plainExclusion } from './site-exclude.ts';
+import { plainPayload } from './site-payload.ts';
 import { plainSignalWarn, plainWarn } from './site-warn.ts';
 import { yamlLibrary } from './yaml-library.ts';
-
-const plainPayload = (how: PayloadReading): unknown => {
-  if (how.kind === 'number') return 'number';
-  return how.time === null ? { [how.kind]: how.value } : { [how.kind]: how.value, time: how.time };
-};
 
 const withoutNulls = (map: Record<string, unknown>): Record<string, unknown> =>
   Object.fromEntries(Object.entries(map).filter(([, value]) => value !== null));
@@ -25,6 +21,10 @@ const plainSignal = (signal: Signal | Input): Record<string, unknown> => {
     topic: signal.topic,
     payload: plainPayload(signal.payload),
     unit: signal.unit,
+    sent_in: signal.sentIn,
+    scale: signal.scale === 1 ? null : signal.scale,
+    offset: signal.offset === 0 ? null : signal.offset,
+    wraps_at: signal.wrapsAt,
     resolution: signal.resolution,
     range: signal.range,
     aggregate: signal.aggregate,

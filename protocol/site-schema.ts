@@ -10,9 +10,9 @@ import { showValue } from './issue.ts';
 import { MAX_CHANNELS, MAX_HORIZON, MAX_SIGNALS, MAX_TICK_MS, MIN_TICK_MS } from './limits.ts';
 import { isName, NAME_RULE } from './name.ts';
 import { nearestName } from './nearest.ts';
-import { isPointer } from './pointer.ts';
-import type { Aggregate, PayloadReading } from './site.ts';
+import type { Aggregate } from './site.ts';
 import { excludeEntrySchema, excludeSchema, whenSchema } from './site-exclude.ts';
+import { PAYLOAD_KEYS, payloadSchema } from './site-payload.ts';
 import { signalWarnSchema, warnSchema } from './site-warn.ts';
 import { checkTopicFilter } from './topics.ts';
 
@@ -110,6 +110,7 @@ const unit = checked(
 );
 
 const number = checked('a number', (value) => (isNumber(value) ? value : undefined));
+const scale = checked('a number other than 0', (value) => (isNumber(value) && value !== 0 ? value : undefined));
 const positive = checked('a number above 0', (value) => (isNumber(value) && value > 0 ? value : undefined));
 const byteCount = checked('a whole number of bytes a day, at least 1024', (value) =>
   Number.isSafeInteger(value) && (value as number) >= 1024 ? (value as number) : undefined,
@@ -134,38 +135,6 @@ const aggregate = checked(
 const isDate = (text: string): boolean => /^\d{4}-\d\d-\d\d$/.test(text) && parseInstant(`${text}T00:00:00Z`) !== null;
 const holiday = checked('a date such as "2026-12-25"', (value) => (isText(value) && isDate(value) ? value : undefined));
 
-/** Keys of a payload map. */
-export const PAYLOAD_KEYS: readonly string[] = ['json', 'msgpack', 'time'];
-
-const pointerOr = (value: unknown, key: string, fail: (key: string, message: string) => void): string => {
-  if (isText(value) && isPointer(value)) return value;
-  const hint =
-    isText(value) && value !== '' && !value.startsWith('/') ? ` (did you mean "/${value.replace(/\./g, '/')}"?)` : '';
-  fail(key, `expected a JSON pointer such as "/value" or "" for the whole payload${hint}, got ${showValue(value)}`);
-  return '';
-};
-
-const payload = z.unknown().transform((value, context): PayloadReading => {
-  if (value === 'number') return { kind: 'number' };
-  if (typeof value !== 'object' || value === null || Array.isArray(value)) {
-    const message = `expected number, {json: "/pointer"} or {msgpack: "/pointer"}, got ${showValue(value)}`;
-    context.addIssue({ code: 'custom', message });
-    return z.NEVER;
-  }
-  const map = value as Record<string, unknown>;
-  const strange = Object.keys(map).filter((key) => !PAYLOAD_KEYS.includes(key));
-  if (strange.length > 0) context.addIssue({ code: 'unrecognized_keys', keys: strange, input: map });
-  const kinds = (['json', 'msgpack'] as const).filter((key) => map[key] !== undefined);
-  if (kinds.length !== 1) {
-    const got = kinds.length === 0 ? 'neither' : 'both';
-    context.addIssue({ code: 'custom', message: `expected one of the keys json and msgpack, got ${got}` });
-    return z.NEVER;
-  }
-  const fail = (key: string, message: string) => context.addIssue({ code: 'custom', path: [key], message });
-  const time = map.time === undefined || map.time === null ? null : pointerOr(map.time, 'time', fail);
-  return { kind: kinds[0]!, value: pointerOr(map[kinds[0]!], kinds[0]!, fail), time };
-});
-
 const limits = z.strictObject({
   high_high: number.nullish(),
   high: number.nullish(),
@@ -176,8 +145,12 @@ const limits = z.strictObject({
 const signalKeys = {
   name,
   topic: topicFilter.nullish(),
-  payload: payload.nullish(),
+  payload: payloadSchema.nullish(),
   unit: unit.nullish(),
+  sent_in: unit.nullish(),
+  scale: scale.nullish(),
+  offset: number.nullish(),
+  wraps_at: positive.nullish(),
   resolution: positive.nullish(),
   range: range.nullish(),
   aggregate: aggregate.nullish(),

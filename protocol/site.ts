@@ -6,17 +6,15 @@ import { listFaults } from './issue.ts';
 import { MAX_SITE_FILE_BYTES } from './limits.ts';
 import { crossFaults } from './site-check.ts';
 import { type Exclusion, excludeFaults, toExclusion } from './site-exclude.ts';
+import type { PayloadReading } from './site-payload.ts';
 import { type SiteFile, siteFileKeys, siteFileSchema } from './site-schema.ts';
 import { type SignalWarn, toSignalWarn, toWarnRule, type WarnRule } from './site-warn.ts';
 import { readYamlFile, type YamlKind } from './yaml-file.ts';
 
+export { documentPayload, type PayloadReading } from './site-payload.ts';
+
 /** How a tick makes one value of the readings that fall into it. */
 export type Aggregate = 'last' | 'mean' | 'min' | 'max' | 'sum' | 'increment';
-
-/** How a reading is taken out of an MQTT payload; pointers are RFC 6901, times ISO 8601 with zone or ms since 1970. */
-export type PayloadReading =
-  | { readonly kind: 'number' }
-  | { readonly kind: 'json' | 'msgpack'; readonly value: string; readonly time: string | null };
 
 /** Levels that operators care about, in the signal's unit; null where none is set. */
 export interface Limits {
@@ -34,6 +32,13 @@ export interface Signal {
   readonly payload: PayloadReading;
   /** UCUM code; '1' where dimensionless. */
   readonly unit: string;
+  /** UCUM code of what the payload holds, after scale and offset; null: `unit`. Histories hold `unit`. */
+  readonly sentIn: string | null;
+  /** The payload's number times this, plus `offset`. */
+  readonly scale: number;
+  readonly offset: number;
+  /** The payload's number at which a counter begins at zero again; null: not known. */
+  readonly wrapsAt: number | null;
   /** Smallest step of the sensor in `unit`; null: found in the history. */
   readonly resolution: number | null;
   /** Physically possible values in `unit`; readings outside are refused. */
@@ -88,6 +93,9 @@ export const DEFAULT_RESIDUAL_BYTES_PER_DAY = 100_000;
 /** Longest default lateness; field buses and local brokers deliver within it (common practice). */
 const MOST_DEFAULT_LATENESS_MS = 10_000;
 
+/** Of a signal whose payload holds its reading as it is. */
+export const AS_SENT = Object.freeze({ sentIn: null, scale: 1, offset: 0, wrapsAt: null });
+
 const NO_LIMITS: Limits = Object.freeze({ highHigh: null, high: null, low: null, lowLow: null });
 
 type SignalEntry = SiteFile['signals'][number];
@@ -107,6 +115,10 @@ const toSignal = (entry: SignalEntry, aggregate: Aggregate, tickMs: number): Sig
   topic: entry.topic ?? null,
   payload: entry.payload ?? { kind: 'number' },
   unit: entry.unit ?? '1',
+  sentIn: entry.sent_in ?? null,
+  scale: entry.scale ?? 1,
+  offset: entry.offset ?? 0,
+  wrapsAt: entry.wraps_at ?? null,
   resolution: entry.resolution ?? null,
   range: entry.range ?? null,
   aggregate: entry.aggregate ?? aggregate,

@@ -3,12 +3,12 @@
  * bundle's filter, surprises into segments. The same readings give the same ticks, forecasts and segments, whether it ran
  * through or was stopped and started in between.
  */
-import { latticeIndex, type Site } from '@stillwell/protocol';
+import { latticeIndex, type ReadingTarget, type Site, wrapOf } from '@stillwell/protocol';
 import type { BundleKeeper } from './bundle/change.ts';
 import type { Disk } from './disk.ts';
 import { Counters } from './health.ts';
 import { Aligner, type LateChange } from './ingest/align.ts';
-import { type DecodedReading, ReadingDecoder } from './ingest/decode.ts';
+import { ReadingDecoder } from './ingest/decode.ts';
 import { PlanKeeper, type PlanOutcome } from './ingest/plans.ts';
 import { refusedBecause } from './ingest/quality.ts';
 import { RecentTicks } from './ingest/recent.ts';
@@ -49,6 +49,14 @@ export class Engine {
   readonly #options: EngineOptions;
   readonly #recent: RecentTicks;
   readonly #ranges: readonly (readonly [number, number] | null)[];
+  /** Of the message being read: what stands for the time of readings without one, and the latest that is believed. */
+  #arrivalMs = 0;
+  #notAfterMs: number | null = null;
+  readonly #target: ReadingTarget = {
+    take: (channel, value, timeMs) => this.#reading(channel, value, Number.isNaN(timeMs) ? this.#arrivalMs : timeMs),
+    refuse: (_, cause) => this.counters.refuse(cause),
+  };
+  readonly #onChange = (change: LateChange): void => this.#correct(change, true);
   #serving: Serving | null = null;
   #journal: Journal | null = null;
   #position: JournalPosition = { number: 0, sinceKeyed: 0 };
@@ -62,7 +70,8 @@ export class Engine {
     this.plans = new PlanKeeper(site);
     this.#ranges = channels.map((channel) => channel.range);
     const aggregates = channels.map((channel) => channel.aggregate);
-    this.aligner = new Aligner({ tickMs: site.tickMs, latenessMs: site.latenessMs, aggregates });
+    const wraps = channels.map(wrapOf);
+    this.aligner = new Aligner({ tickMs: site.tickMs, latenessMs: site.latenessMs, aggregates, wraps });
     this.#recent = new RecentTicks(channels.length, RECENT_TICKS);
     let identity = openIdentity(disk, folder, site.site, gateway, options.stream);
     let recovered = recover(disk, folder, identity.stream);
@@ -98,12 +107,9 @@ export class Engine {
 
   /** Takes one MQTT message in; `arrivalMs` stands for the time of readings without one. */
   message(topic: string, payload: Uint8Array, arrivalMs: number, notAfterMs: number | null): void {
-    this.decoder.decode(
-      topic,
-      payload,
-      (reading) => this.#reading(reading, arrivalMs, notAfterMs),
-      (_, cause) => this.counters.refuse(cause),
-    );
+    this.#arrivalMs = arrivalMs;
+    this.#notAfterMs = notAfterMs;
+    this.decoder.decode(topic, payload, this.#target);
   }
 
   /**
@@ -262,21 +268,19 @@ export class Engine {
     return serving.tick < 0 || serving.tick + 1 === next ? serving : new Serving(checked);
   }
 
-  #reading({ channel, value, timeMs }: DecodedReading, arrivalMs: number, notAfterMs: number | null): void {
+  #reading(channel: number, value: number, timeMs: number): void {
     const cause = refusedBecause(value, this.#ranges[channel]!);
     if (cause !== null) {
       this.counters.refuse(cause);
       return;
     }
-    const placed = this.aligner.place(channel, timeMs ?? arrivalMs, value, notAfterMs, (change) =>
-      this.#correct(change, true),
-    );
+    const placed = this.aligner.place(channel, timeMs, value, this.#notAfterMs, this.#onChange);
     if (placed === 'duplicate') this.counters.duplicates++;
     else if (placed === 'future' || placed === 'too-late' || placed === 'flood') this.counters.refuse(placed);
     else {
       this.counters.readings++;
       if (placed !== 'taken') this.counters.late++;
-      this.#journal?.reading(channel, timeMs ?? arrivalMs, value);
+      this.#journal?.reading(channel, timeMs, value);
     }
   }
 

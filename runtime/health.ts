@@ -1,13 +1,9 @@
 /** What a gateway counts from its start to its end, for health and status. */
+import type { PayloadReason } from '@stillwell/protocol';
 
 /** Why a reading was refused, beside the reasons a payload gives. */
 export type RefusedCause =
-  | 'size'
-  | 'empty'
-  | 'syntax'
-  | 'absent'
-  | 'value'
-  | 'time'
+  | PayloadReason
   | 'below-range'
   | 'above-range'
   | 'future'

@@ -5,7 +5,7 @@ import { checkNamed } from '../bundle/load.ts';
 import { type BrokerConfig, type RawOptions, readConfig, readGiven } from '../config.ts';
 import { nodeDisk } from '../disk.ts';
 import { RuntimeError } from '../errors.ts';
-import { type DecodedReading, ReadingDecoder } from '../ingest/decode.ts';
+import { ReadingDecoder } from '../ingest/decode.ts';
 import { refusedBecause } from '../ingest/quality.ts';
 import { openConnection, shownBroker } from '../mqtt/connection.ts';
 import { brokerOptions, siteOptions } from './options.ts';
@@ -77,7 +77,7 @@ async function listen(
   const channels = [...site.signals, ...site.inputs];
   const heard: Heard[] = channels.map(({ name, topic }) => ({ name, topic, count: 0, last: null, refused: null }));
   const decoder = new ReadingDecoder(site);
-  const take = ({ channel, value }: DecodedReading): void => {
+  const take = (channel: number, value: number): void => {
     const one = heard[channel]!;
     one.count++;
     one.last = value;
@@ -86,10 +86,14 @@ async function listen(
   const connection = openConnection({
     ...broker,
     clientId: `stillwell-check-${site.site}-${process.pid}`,
-    onMessage: (topic, payload) =>
-      decoder.decode(topic, payload, take, (channel, cause) => {
-        heard[channel]!.refused = cause;
-      }),
+    onMessage: (topic, payload) => {
+      decoder.decode(topic, payload, {
+        take,
+        refuse: (channel, reason) => {
+          heard[channel]!.refused = reason;
+        },
+      });
+    },
   });
   try {
     await connection.firstConnect(CONNECT_MS);

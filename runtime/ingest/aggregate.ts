@@ -1,5 +1,5 @@
 /** One value of the readings that fell into a tick. Order of arrival does not matter: readings are sorted by time first. */
-import type { Aggregate } from '@stillwell/protocol';
+import { type Aggregate, counterIncrease } from '@stillwell/protocol';
 
 /** Readings of one channel in one tick, in order of arrival; `times` ms since 1970. */
 export interface TickReadings {
@@ -10,11 +10,16 @@ export interface TickReadings {
 /**
  * The tick's value.
  *
- * counterBefore  for 'increment': the counter at its last reading before the tick, NaN where unknown. A counter that fell
- *                was reset to zero, so its reading is the increment.
+ * counterBefore  for 'increment': the counter at its last reading before the tick, NaN where unknown
+ * wrap           for 'increment': where the counter begins again, null where it is not known
  * returns        NaN without readings, and for the first increment
  */
-export function aggregateTick(how: Aggregate, readings: TickReadings, counterBefore: number): number {
+export function aggregateTick(
+  how: Aggregate,
+  readings: TickReadings,
+  counterBefore: number,
+  wrap: number | null = null,
+): number {
   const values = inOrder(readings);
   if (values.length === 0) return Number.NaN;
   switch (how) {
@@ -29,7 +34,7 @@ export function aggregateTick(how: Aggregate, readings: TickReadings, counterBef
     case 'mean':
       return values.reduce((sum, value) => sum + value, 0) / values.length;
     case 'increment':
-      return increments(values, counterBefore);
+      return increments(values, counterBefore, wrap);
   }
 }
 
@@ -39,13 +44,14 @@ export function latestValue(readings: TickReadings): number {
   return values.length === 0 ? Number.NaN : values[values.length - 1]!;
 }
 
-function increments(values: readonly number[], counterBefore: number): number {
+function increments(values: readonly number[], counterBefore: number, wrap: number | null): number {
   let sum = 0;
   let before = counterBefore;
   let known = false;
   for (const value of values) {
-    if (!Number.isNaN(before)) {
-      sum += value >= before ? value - before : value;
+    const increase = counterIncrease(before, value, wrap);
+    if (!Number.isNaN(increase)) {
+      sum += increase;
       known = true;
     }
     before = value;

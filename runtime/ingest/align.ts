@@ -13,6 +13,8 @@ export interface AlignerOptions {
   readonly latenessMs: number;
   /** (nc), signals first. */
   readonly aggregates: readonly Aggregate[];
+  /** (nc) where each counter begins again, in its channel's unit; null where that is not known, and for all else. */
+  readonly wraps?: readonly (number | null)[];
   /** Closed ticks whose readings are kept for corrections. Default 720. */
   readonly rememberTicks?: number;
 }
@@ -294,9 +296,12 @@ export class Aligner {
       const readings = channels?.[c];
       if (!readings) {
         this.#values[c] = Number.NaN;
+        // What a counter counts across a tick without a reading belongs to no one tick, to the trainer as here.
+        this.#counters[c] = Number.NaN;
         continue;
       }
-      this.#values[c] = aggregateTick(this.#options.aggregates[c]!, readings, this.#counters[c]!);
+      const wrap = this.#options.wraps?.[c] ?? null;
+      this.#values[c] = aggregateTick(this.#options.aggregates[c]!, readings, this.#counters[c]!, wrap);
       if (this.#options.aggregates[c] === 'increment' && readings.times.length > 0)
         this.#counters[c] = latestValue(readings);
     }

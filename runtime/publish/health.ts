@@ -105,6 +105,7 @@ export function healthPayload(report: HealthReport): Uint8Array {
       segments_shed: journal?.counts.shedSegments ?? 0,
       segments_lost: (journal?.counts.lost ?? 0) + spool.damaged,
       ...planCounts(engine),
+      ...sparkplugCounts(engine),
       spool_bytes: spool.bytes,
       reconnects: report.reconnects,
       ...report.counts,
@@ -117,6 +118,11 @@ export function healthPayload(report: HealthReport): Uint8Array {
 /** Nothing at sites without plans. */
 function planCounts({ plans }: Engine): Record<string, number | Readonly<Record<string, number>>> {
   return plans.filters.length === 0 ? {} : { plans: plans.taken, plans_refused: plans.refused };
+}
+
+/** Nothing at sites without that standard. */
+function sparkplugCounts({ decoder }: Engine): Record<string, Readonly<Record<string, number>>> {
+  return decoder.sparkplug === null ? {} : { sparkplug: { ...decoder.sparkplug.counts } };
 }
 
 function judgeGateway(report: HealthReport): Judged {

@@ -1,15 +1,17 @@
 import { Packr } from 'msgpackr';
 import { describe, expect, test } from 'vitest';
-import { readPayload } from '../../protocol/reading.ts';
-import type { PayloadReading } from '../../protocol/site.ts';
-import { refusalOf } from '../support/refusal.ts';
+import { AS_SENT, documentPayload, type PayloadReading } from '../../protocol/site.ts';
+import { decodeOne } from '../support/decode-one.ts';
 
 const text = (content: string): Uint8Array => new TextEncoder().encode(content);
 const bare: PayloadReading = { kind: 'number' };
-const json = (value: string, time: string | null = null): PayloadReading => ({ kind: 'json', value, time });
-const packed = (value: string, time: string | null = null): PayloadReading => ({ kind: 'msgpack', value, time });
+const json = (value: string, time: string | null = null): PayloadReading => documentPayload('json', value, time);
+const packed = (value: string, time: string | null = null): PayloadReading => documentPayload('msgpack', value, time);
 const packr = new Packr({ useRecords: false });
 const pack = (value: unknown): Uint8Array => packr.pack(value);
+
+const read = (payload: PayloadReading, bytes: Uint8Array) =>
+  decodeOne({ topic: 'a', payload, unit: '1', ...AS_SENT }, bytes);
 
 describe('a reading', () => {
   test.each<[string, PayloadReading, Uint8Array, number, number | null]>([
@@ -45,7 +47,7 @@ describe('a reading', () => {
       2,
       null,
     ],
-  ])('%s', (_, how, payload, value, timeMs) => expect(readPayload(how, payload)).toEqual({ value, timeMs }));
+  ])('%s', (_, how, payload, value, timeMs) => expect(read(how, payload)).toEqual({ value, timeMs }));
 
   test.each<[string, PayloadReading, Uint8Array, string, string]>([
     ['no bytes', bare, text(''), 'empty', 'expected a reading, got no bytes'],
@@ -78,18 +80,15 @@ describe('a reading', () => {
     ['a MessagePack extension', packed(''), pack(new Date(0)), 'syntax', 'extension type'],
     ['too many bytes', bare, new Uint8Array(65_537).fill(0x31), 'size', 'at most 65536 bytes, got 65537'],
   ])('%s is refused', (_, how, payload, reason, message) => {
-    const refusal = refusalOf(() => readPayload(how, payload));
-    expect(refusal.code).toBe('payload');
-    expect(refusal.details.reason).toBe(reason);
-    expect(refusal.message).toContain(message);
-    expect(refusal.message.length).toBeLessThan(200);
+    const refused = read(how, payload);
+    expect(refused.reason).toBe(reason);
+    expect(refused.text).toContain(message);
+    expect(refused.text!.length).toBeLessThan(200);
   });
 
-  test('nesting without end is refused quickly, not by a stack overflow', () => {
-    const started = performance.now();
+  test('nesting without end is refused, not by a stack overflow', () => {
     const open = text('['.repeat(60_000));
-    expect(refusalOf(() => readPayload(json('/0'), open)).details.reason).toBe('syntax');
-    expect(refusalOf(() => readPayload(packed('/0'), new Uint8Array(60_000).fill(0x91))).details.reason).toBe('syntax');
-    expect(performance.now() - started).toBeLessThan(500);
+    expect(read(json('/0'), open).reason).toBe('syntax');
+    expect(read(packed('/0'), new Uint8Array(60_000).fill(0x91)).reason).toBe('syntax');
   });
 });

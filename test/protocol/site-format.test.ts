@@ -3,6 +3,7 @@ import { describe, expect, test } from 'vitest';
 import { formatDuration, parseDuration } from '../../protocol/duration.ts';
 import { isName, toName } from '../../protocol/name.ts';
 import { nearestName } from '../../protocol/nearest.ts';
+import type { GoodRule } from '../../protocol/payload/good.ts';
 import { type Input, type Limits, parseSite, type Signal, type Site } from '../../protocol/site.ts';
 import type { Exclusion } from '../../protocol/site-exclude.ts';
 import { formatSite } from '../../protocol/site-format.ts';
@@ -20,12 +21,22 @@ const limits: fc.Arbitrary<Limits> = fc
     const [lowLow, low, high, highHigh] = levels.sort((a, b) => a - b).map((value, i) => (isSet[i] ? value : null));
     return { highHigh: highHigh!, high: high!, low: low!, lowLow: lowLow! };
   });
+const good = fc.constantFrom<GoodRule>(null, 'opc-ua', [192, 'good', null, true], ['yes', '12']);
 const payload: fc.Arbitrary<Signal['payload']> = fc.oneof(
   fc.constant({ kind: 'number' as const }),
   record({
     kind: fc.constantFrom('json' as const, 'msgpack' as const),
     value: fc.constantFrom('', '/v', '/a~1b/0', '/ä "x"'),
     time: fc.constantFrom(null, '/t', ''),
+    quality: fc.constant(null),
+    good: fc.constant(null),
+  }),
+  record({
+    kind: fc.constantFrom('json' as const, 'msgpack' as const),
+    value: fc.constant('/v'),
+    time: fc.constant(null),
+    quality: fc.constantFrom('/q', ''),
+    good,
   }),
 );
 /** Openings above closings whatever stands around them. */
@@ -35,11 +46,34 @@ const words: fc.Arbitrary<WarnWords> = record({
   hold: fc.option(fc.integer({ min: 1, max: 5000 })),
 });
 const limitNames = ['highHigh', 'high', 'low', 'lowLow'] as const;
-const signal: fc.Arbitrary<Signal> = record({
+const sparkplug: fc.Arbitrary<Signal['payload']> = record({
+  kind: fc.constant('sparkplug' as const),
+  metric: fc.constantFrom('Tank/Level', 'yes', '12', ' a: b '),
+  good,
+});
+/** Topic and payload. */
+const source = fc.oneof(
+  fc.tuple(fc.option(fc.constantFrom('a/b', '+/x', 'plant/#', 'yes', '123', ' spaced out ', '#')), payload),
+  fc.tuple(fc.constantFrom(null, 'spBv1.0/g/+/n', 'spBv1.0/group one/+/n/d'), sparkplug),
+);
+const units = fc.constantFrom<[string, string | null]>(
+  ...(
+    [
+      ['1', null],
+      ['Cel', '[degF]'],
+      ['m3/h', 'L/s'],
+      ['%', '1'],
+      ['[degF]', null],
+      ['kW.h', 'MJ'],
+    ] as const
+  ).map(([unit, sentIn]): [string, string | null] => [unit, sentIn]),
+);
+const factor = fc.double({ min: 1e-6, max: 1e6, noNaN: true });
+const keys = record<Omit<Signal, 'topic' | 'payload' | 'unit' | 'sentIn'>>({
   name,
-  topic: fc.option(fc.constantFrom('a/b', '+/x', 'plant/#', 'yes', '123', ' spaced out ', '#')),
-  payload,
-  unit: fc.constantFrom('1', 'Cel', 'm3/h', '%', '[degF]', 'kW.h'),
+  scale: factor,
+  offset: fc.double({ min: -1e6, max: 1e6, noNaN: true }).map((value) => value + 0),
+  wrapsAt: fc.constantFrom(null, 65_536, 2 ** 53),
   resolution: fc.option(fc.double({ min: 1e-9, max: 10, noNaN: true })),
   range: fc.option(
     fc.tuple(fc.double({ min: -1e6, max: -100, noNaN: true }), fc.double({ min: 100, max: 1e6, noNaN: true })),
@@ -60,6 +94,18 @@ const signal: fc.Arbitrary<Signal> = record({
     }),
   ),
   column: fc.string({ unit: 'grapheme', minLength: 1, maxLength: 12 }),
+});
+const signal: fc.Arbitrary<Signal> = fc.tuple(keys, source, units).map(([one, [topic, how], [unit, sentIn]]) => {
+  const isCounter = one.aggregate === 'increment';
+  return {
+    ...one,
+    topic,
+    payload: how,
+    unit,
+    sentIn: isCounter && unit === 'Cel' ? null : sentIn,
+    offset: isCounter ? 0 : one.offset,
+    wrapsAt: isCounter ? one.wrapsAt : null,
+  };
 });
 const input: fc.Arbitrary<Input> = fc
   .tuple(signal, fc.constantFrom(null, 'plan/x'))

@@ -95,13 +95,13 @@ describe('a wrong value', () => {
     [
       '{json: /value, time: /ts}',
       '{time: /ts}',
-      '11:14: signals[0].payload: expected one of the keys json and msgpack, got neither',
+      '11:14: signals[0].payload: expected one of the keys json, msgpack and sparkplug, got none of them',
     ],
-    ['{json: /value, time: /ts}', '{json: /v, msgpack: /v}', 'got both'],
+    ['{json: /value, time: /ts}', '{json: /v, msgpack: /v}', 'got json and msgpack'],
     [
       '{json: /value, time: /ts}',
       'text',
-      '11:14: signals[0].payload: expected number, {json: "/pointer"} or {msgpack: "/pointer"}, got "text"',
+      '11:14: signals[0].payload: expected number, {json: "/pointer"}, {msgpack: "/pointer"} or {sparkplug: "metric"}, got "text"',
     ],
     [
       'unit: m\n',

@@ -1,6 +1,6 @@
 /** Reading site files: what a good one gives. */
 import { describe, expect, test } from 'vitest';
-import { parseSite } from '../../protocol/site.ts';
+import { AS_SENT, documentPayload, parseSite } from '../../protocol/site.ts';
 import { refusalOf } from '../support/refusal.ts';
 import { edited, GOOD } from '../support/site-text.ts';
 
@@ -21,8 +21,9 @@ describe('a good site file', () => {
         {
           name: 'level',
           topic: 'plant/well/level',
-          payload: { kind: 'json', value: '/value', time: '/ts' },
+          payload: documentPayload('json', '/value', '/ts'),
           unit: 'm',
+          ...AS_SENT,
           resolution: 0.01,
           range: [0, 6],
           aggregate: 'last',
@@ -35,6 +36,7 @@ describe('a good site file', () => {
           topic: null,
           payload: { kind: 'number' },
           unit: '1',
+          ...AS_SENT,
           resolution: null,
           range: null,
           aggregate: 'mean',
@@ -49,6 +51,7 @@ describe('a good site file', () => {
           topic: 'weather/+/rain',
           payload: { kind: 'number' },
           unit: 'mm/h',
+          ...AS_SENT,
           resolution: null,
           range: null,
           aggregate: 'sum',
@@ -100,7 +103,7 @@ describe('a good site file', () => {
       'json: /value',
       'json: ""',
       (s: ReturnType<typeof parseSite>) => s.signals[0]!.payload,
-      { kind: 'json', value: '', time: '/ts' },
+      documentPayload('json', '', '/ts'),
     ],
     [
       'MessagePack',
@@ -134,6 +137,6 @@ describe('a good site file', () => {
       'payload: number',
       'payload: *p',
     );
-    expect(parseSite(text).inputs[0]!.payload).toEqual({ kind: 'json', value: '/value', time: '/ts' });
+    expect(parseSite(text).inputs[0]!.payload).toEqual(documentPayload('json', '/value', '/ts'));
   });
 });

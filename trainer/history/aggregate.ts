@@ -2,18 +2,21 @@
  * How the readings of one tick become one value. Readings come in order of time; a counter's increment belongs to the
  * tick of the later reading.
  */
-import type { Aggregate } from '@stillwell/protocol';
+import { type Aggregate, counterIncrease } from '@stillwell/protocol';
 
 /** What is kept of the current tick and, for counters, of the reading before it. */
 export class TickValue {
   readonly #how: Aggregate;
   #count = 0;
   #value = 0;
+  readonly #wrap: number | null;
   #counter = Number.NaN;
   #counterTick = Number.NaN;
 
-  constructor(how: Aggregate) {
+  /** wrap  where a counter begins again; null where that is not known */
+  constructor(how: Aggregate, wrap: number | null = null) {
     this.#how = how;
+    this.#wrap = wrap;
   }
 
   /** Adds a reading of tick `tick`. */
@@ -29,10 +32,11 @@ export class TickValue {
     else this.#value += value;
   }
 
-  /** A counter that falls was reset and counts from zero. Across missing ticks the increment belongs to no one tick. */
+  /** Across missing ticks the increment belongs to no one tick. */
   #addCounter(tick: number, value: number): void {
-    if (tick - this.#counterTick <= 1) {
-      this.#value += value >= this.#counter ? value - this.#counter : value;
+    const increase = counterIncrease(this.#counter, value, this.#wrap);
+    if (tick - this.#counterTick <= 1 && !Number.isNaN(increase)) {
+      this.#value += increase;
       this.#count++;
     }
     this.#counter = value;

@@ -3,7 +3,7 @@
  * the gateway would read it, by the site file's topics and payload mapping, so that what is learned is what will be seen.
  * A payload the mapping cannot read is counted, not refused: on a live broker such things come.
  */
-import { matchesFilter, ProtocolError, readPayload, type Signal } from '@stillwell/protocol';
+import { MessageDecoder, type PayloadReason, type ReadingTarget, type Signal } from '@stillwell/protocol';
 import { type FileAccount, type FileReader, type ReaderState, tally } from './file-reader.ts';
 import type { Gathering } from './gathering.ts';
 import { readMemberTime } from './long-ndjson.ts';
@@ -55,7 +55,15 @@ export class CaptureReader implements FileReader {
   readonly #gathering: Gathering;
   readonly #times: TimeReader;
   readonly #lines: LineObjects;
-  readonly #channelsOf = new Map<string, readonly number[]>();
+  readonly #decoder: MessageDecoder;
+  /** Of the line being read. */
+  #line = 0;
+  readonly #target: ReadingTarget = {
+    take: (channel, value, timeMs) =>
+      this.#gathering.add(channel, Number.isNaN(timeMs) ? this.#arrivedMs : timeMs, value, this.#line),
+    refuse: (channel, reason) =>
+      tally(this.#passedOver, passedOverBecause((this.#signals[channel] as Signal).name, reason)),
+  };
   readonly #passedOver: Record<string, number> = {};
   readonly #ignored = new Set<string>();
   #arrivedMs = Number.NEGATIVE_INFINITY;
@@ -66,6 +74,7 @@ export class CaptureReader implements FileReader {
     this.#path = path;
     this.#signals = signals;
     this.#gathering = gathering;
+    this.#decoder = new MessageDecoder(signals);
     this.#times = times;
     this.#lines = new LineObjects(path, (line, number) => this.#message(line, number));
   }
@@ -89,6 +98,7 @@ export class CaptureReader implements FileReader {
     return {
       ...{ rest: 0, line: this.#lines.number, rows: this.rows, names: [], missingMarks: {} },
       ...{ ignored: [...this.#ignored], passedOver: this.#passedOver, arrivedMs: this.#arrivedMs },
+      births: this.#decoder.sparkplug?.save() ?? [],
     };
   }
 
@@ -98,18 +108,7 @@ export class CaptureReader implements FileReader {
     Object.assign(this.#passedOver, state.passedOver);
     for (const topic of state.ignored ?? []) this.#ignored.add(topic);
     this.#arrivedMs = state.arrivedMs ?? Number.NEGATIVE_INFINITY;
-  }
-
-  #channels(topic: string): readonly number[] {
-    let channels = this.#channelsOf.get(topic);
-    if (!channels) {
-      channels = this.#signals.flatMap((signal, c) =>
-        signal.topic !== null && matchesFilter(signal.topic, topic) ? [c] : [],
-      );
-      this.#channelsOf.set(topic, channels);
-      if (channels.length === 0) this.#ignored.add(topic);
-    }
-    return channels;
+    this.#decoder.sparkplug?.restore(state.births ?? []);
   }
 
   #message(line: Readonly<Record<string, unknown>>, number: number): void {
@@ -118,15 +117,14 @@ export class CaptureReader implements FileReader {
     const arrivedMs = readMemberTime(this.#path, number, line.time, this.#times, this.#arrivedMs);
     this.#arrivedMs = arrivedMs;
     const payload = payloadOf(this.#path, line, number);
-    for (const channel of this.#channels(topic)) {
-      const signal = this.#signals[channel] as Signal;
-      try {
-        const { value, timeMs } = readPayload(signal.payload, payload);
-        this.#gathering.add(channel, timeMs ?? arrivedMs, value, number);
-      } catch (cause) {
-        if (!(cause instanceof ProtocolError)) throw cause;
-        tally(this.#passedOver, `payload of ${signal.name} not readable`);
-      }
-    }
+    this.#line = number;
+    if (!this.#decoder.decode(topic, payload, this.#target)) this.#ignored.add(topic);
   }
+}
+
+function passedOverBecause(name: string, reason: PayloadReason): string {
+  if (reason === 'quality') return `payload of ${name} not of good quality`;
+  return reason === 'unborn'
+    ? `payload of ${name} before the birth that explains it`
+    : `payload of ${name} not readable`;
 }

@@ -2,7 +2,7 @@
  * Which signals history files hold, before any site file names them: the columns with numbers of wide files, the names in
  * long ones, the topics of captured messages with the members of their payloads.
  */
-import { MAX_CHANNELS, type PayloadReading, toName } from '@stillwell/protocol';
+import { documentPayload, MAX_CHANNELS, type PayloadReading, toName } from '@stillwell/protocol';
 import { TrainError } from '../errors.ts';
 import { payloadOf, topicOf } from './capture.ts';
 import { ColumnsEngine } from './columns-engine.ts';
@@ -95,7 +95,7 @@ class TopicScan {
       if (typeof value !== 'number' || key === time) continue;
       this.found.set(`${topic} ${key}`, {
         topic,
-        payload: { kind: 'json', value: pointerTo(key), time: time === undefined ? null : pointerTo(time) },
+        payload: documentPayload('json', pointerTo(key), time === undefined ? null : pointerTo(time)),
       });
     }
   }
@@ -177,7 +177,8 @@ function topicLabels(found: readonly { topic: string; payload: PayloadReading }[
   while (common < depth - 1 && split.every((levels) => levels[common] === split[0]?.[common])) common++;
   return found.map(({ payload }, index) => {
     const levels = (split[index] as string[]).slice(common).join('_');
-    return payload.kind === 'number' || payload.value === '/value' ? levels : `${levels}_${payload.value.slice(1)}`;
+    const isMember = 'value' in payload && payload.value !== '/value';
+    return isMember ? `${levels}_${payload.value.slice(1)}` : levels;
   });
 }
 

@@ -1,6 +1,7 @@
 /**
  * What a reader of one file format must do; read.ts drives it, and adds size and digest to its account.
  */
+import type { SavedNode } from '@stillwell/protocol';
 import type { FileRead } from './history.ts';
 import { refusal, shown } from './refusal.ts';
 import type { TimeReader } from './times.ts';
@@ -22,6 +23,8 @@ export interface ReaderState {
   readonly passedOver?: Readonly<Record<string, number>>;
   /** Time of the last message. */
   readonly arrivedMs?: number | null;
+  /** Births of Sparkplug nodes, of captures. */
+  readonly births?: readonly SavedNode[];
 }
 
 /** The reader of one file: blocks in, an account out. */

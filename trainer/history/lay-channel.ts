@@ -2,7 +2,7 @@
  * The readings of one channel laid on ticks: implausible ones left out, one value a tick by the signal's aggregate, on its
  * lattice. Ticks may be laid in several runs, one after the other: then the tick value carries counters across.
  */
-import { latticeIndex, latticeValue, type Signal } from '@stillwell/protocol';
+import { latticeIndex, latticeValue, type Signal, wrapOf } from '@stillwell/protocol';
 import { TickValue } from './aggregate.ts';
 import type { ChannelReadings } from './history.ts';
 import type { Plausible } from './plausible.ts';
@@ -49,7 +49,7 @@ export function layChannel(
   span: LaidSpan,
   plausible: Plausible,
   untilMs: number,
-  tick: TickValue = new TickValue(signal.aggregate),
+  tick: TickValue = new TickValue(signal.aggregate, wrapOf(signal)),
 ): Float64Array {
   const laid = new Float64Array(span.ticks).fill(Number.NaN);
   if (signal.aggregate === 'last') {

@@ -5,7 +5,7 @@
  * sample of the readings so far.
  */
 import { createHash } from 'node:crypto';
-import type { Signal, Site } from '@stillwell/protocol';
+import { type Signal, type Site, wrapOf } from '@stillwell/protocol';
 import { believe, type Remembered, remember } from '../exclusions.ts';
 import { TickValue } from './aggregate.ts';
 import { channelsOf } from './channels.ts';
@@ -86,7 +86,7 @@ export class OlderTicks {
     this.#site = site;
     this.#sink = sink;
     this.#channels = channelsOf(site);
-    this.#ticks = this.#channels.map((signal) => new TickValue(signal.aggregate));
+    this.#ticks = this.#channels.map((signal) => new TickValue(signal.aggregate, wrapOf(signal)));
     this.#samples = this.#channels.map(() => new ThinnedSample());
     this.#readings = this.#channels.map(() => 0);
   }

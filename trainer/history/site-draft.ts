@@ -3,6 +3,7 @@
  * not. A person is expected to go over it; the comments say where.
  */
 import {
+  AS_SENT,
   DEFAULT_RESIDUAL_BYTES_PER_DAY,
   DEFAULT_ROOT,
   defaultWarnRule,
@@ -64,6 +65,7 @@ function signalOf(found: Discovered, siteName: string): Signal {
     topic: found.topic ?? `plant/${siteName}/${found.name}`,
     payload: found.payload,
     unit: found.unit,
+    ...AS_SENT,
     resolution: null,
     range: null,
     aggregate: 'mean',

@@ -100,16 +100,49 @@ test('counters give increments across ticks, through a reset, and none for the f
     [100, 50],
     [1100, 53],
     [1900, 60],
-    [3100, 2],
-    [4000, 2],
+    [2100, 2],
+    [4100, 7],
+    [5200, 9],
+    [6000, 9],
   ] as const)
     place(a, 0, time, value);
   expect(close(a)).toEqual([
     [0, Number.NaN],
     [1, 10],
-    [2, Number.NaN],
-    [3, 2],
+    [2, 2],
+    [3, Number.NaN],
+    // What was counted since tick 2 belongs to no one tick.
+    [4, Number.NaN],
+    [5, 2],
   ]);
+});
+
+test('counters wrap where they end, also between a restart and the reading before it', () => {
+  const options = { tickMs: 1000, latenessMs: 0, aggregates: ['increment'] as const, wraps: [65_536] };
+  const before = new Aligner(options);
+  for (const [time, value] of [
+    [100, 65_000],
+    [1100, 65_530],
+    [2100, 4],
+  ] as const)
+    place(before, 0, time, value);
+  expect(close(before)).toEqual([
+    [0, Number.NaN],
+    [1, 530],
+  ]);
+  const after = new Aligner(options);
+  after.startAt(before.nextTick!);
+  const open = before.openReadings();
+  after.restore(open.marks);
+  open.visit((channel, timeMs, value) => after.replay(channel, timeMs, value));
+  for (const a of [before, after]) {
+    place(a, 0, 3100, 0);
+    place(a, 0, 4100, 3);
+    expect(close(a)).toEqual([
+      [2, 10],
+      [3, 0],
+    ]);
+  }
 });
 
 test('what was open before a restart comes back', () => {
@@ -119,16 +152,17 @@ test('what was open before a restart comes back', () => {
   place(before, 0, 1400, 2);
   close(before);
   place(before, 0, 1450, 4);
+  place(before, 1, 1500, 12);
   const after = aligner(300, ['mean', 'increment']);
   after.startAt(before.nextTick!);
   const open = before.openReadings();
   after.restore(open.marks);
   open.visit((channel, timeMs, value) => after.replay(channel, timeMs, value));
   for (const a of [before, after]) place(a, 1, 2300, 13);
-  expect(close(after)).toEqual([[1, 3, Number.NaN]]);
-  expect(close(before)).toEqual([[1, 3, Number.NaN]]);
+  expect(close(after)).toEqual([[1, 3, 2]]);
+  expect(close(before)).toEqual([[1, 3, 2]]);
   for (const a of [before, after]) place(a, 0, 3400, 0);
-  expect(close(after)).toEqual([[2, Number.NaN, 3]]);
+  expect(close(after)).toEqual([[2, Number.NaN, 1]]);
 });
 
 test('closed ticks that are replayed take late readings and know redelivered ones, as if there had been no restart', () => {
@@ -158,7 +192,8 @@ test('closed ticks that are replayed take late readings and know redelivered one
     place(a, 1, 3100, 15);
     expect(close(a)).toEqual([[2, 7, Number.NaN]]);
     place(a, 0, 4100, 0);
-    expect(close(a)).toEqual([[3, Number.NaN, 3]]);
+    // Tick 2 had no counter reading: what was counted since tick 1 belongs to no one tick.
+    expect(close(a)).toEqual([[3, Number.NaN, Number.NaN]]);
   }
 });
 

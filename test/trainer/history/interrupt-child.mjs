@@ -10,8 +10,16 @@ import { loadLong } from '../../../trainer/dist/history/long.js';
 const [history, resumeFile, ...asked] = process.argv.slice(2);
 const limits = { longFrom: 96, recentTicks: 64, chunkTicks: 16, blockBytes: 256 };
 const plain = { payload: { kind: 'number' }, unit: '1', resolution: null, range: null, aggregate: 'last' };
+const asSent = { sentIn: null, scale: 1, offset: 0, wrapsAt: null };
 const none = { highHigh: null, high: null, low: null, lowLow: null };
-const signals = ['level', 'flow'].map((name) => ({ name, topic: name, column: name, limits: none, ...plain }));
+const signals = ['level', 'flow'].map((name) => ({
+  name,
+  topic: name,
+  column: name,
+  limits: none,
+  ...plain,
+  ...asSent,
+}));
 const site = {
   site: 'test',
   timeZone: 'UTC',

@@ -2,7 +2,7 @@
 import { mkdtempSync, rmSync, writeFileSync } from 'node:fs';
 import { tmpdir } from 'node:os';
 import { join } from 'node:path';
-import type { Input, Signal, Site } from '../../../protocol/index.ts';
+import { AS_SENT, type Input, type Signal, type Site } from '../../../protocol/index.ts';
 
 export function signal(name: string, more: Partial<Signal> = {}): Signal {
   return {
@@ -10,6 +10,7 @@ export function signal(name: string, more: Partial<Signal> = {}): Signal {
     topic: `plant/test/${name}`,
     payload: { kind: 'number' },
     unit: '1',
+    ...AS_SENT,
     resolution: null,
     range: null,
     aggregate: 'last',

@@ -1,6 +1,6 @@
 /** Readings on ticks, aggregates, lattices. */
 import { afterAll, describe, expect, it } from 'vitest';
-import type { Aggregate } from '../../../protocol/index.ts';
+import { type Aggregate, documentPayload } from '../../../protocol/index.ts';
 import { TickValue } from '../../../trainer/history/aggregate.ts';
 import { loadHistory } from '../../../trainer/history/load.ts';
 import { findLattice } from '../../../trainer/history/resolution.ts';
@@ -154,7 +154,7 @@ describe('from file to ticks', () => {
       { time: '2024-01-01T00:02:30Z', topic: 'other/thing', payload: '1' },
     ];
     const path = folder.write('m.ndjson', lines.map((line) => JSON.stringify(line)).join('\r\n'));
-    const asked = site([signal('t', { topic: 'plant/+/box', payload: { kind: 'json', value: '/v/t', time: '/at' } })]);
+    const asked = site([signal('t', { topic: 'plant/+/box', payload: documentPayload('json', '/v/t', '/at') })]);
     const { series, history, survey } = await loadHistory([path], asked, { zone: null });
     expect([...series.values[0]!]).toEqual([20.5, 21]);
     expect(history.files[0]).toMatchObject({
