@@ -17,6 +17,31 @@ interface Spectra {
   readonly size: number;
   /** (nc × nc) pairs i·nc + j, channel i the later; each (size / 2 + 1) real parts, then as many imaginary ones. */
   readonly pairs: readonly Float64Array[];
+  /** The row to be transformed. */
+  readonly x: Float64Array;
+  /** Blocks that were transformed and not yet added, the oldest first, `fresh` of them. */
+  readonly blocks: readonly Block[];
+  fresh: number;
+  readonly tiles: readonly Tile[];
+}
+
+/** The spectra of one block, each as those of pairs. */
+interface Block {
+  /** (nc) of the ticks with what reaches back before them, and of the block alone. */
+  readonly windows: readonly Float64Array[];
+  readonly own: readonly Float64Array[];
+}
+
+/** Real and imaginary parts of some frequencies of a spectrum. */
+interface Part {
+  readonly re: Float64Array;
+  readonly im: Float64Array;
+}
+
+/** The same frequencies of all spectra, kept since views are dear to make. */
+interface Tile {
+  readonly pairs: readonly Part[];
+  readonly blocks: readonly { readonly windows: readonly Part[]; readonly own: readonly Part[] }[];
 }
 
 /** Which lags a sequence's entries are, and what of each counts. */
@@ -30,11 +55,15 @@ export interface Spread {
 const SIZE_STEP = 4;
 const SHORTEST = 256;
 /** Frequencies of all pairs worked on together, so that the channels' spectra stay near the processor. */
-const TILE = 512;
+const TILE = 1024;
+/** Blocks added together: the spectra of pairs are more than fits near the processor, and each is fetched once for all of them. */
+const TOGETHER = 2;
 /** Beyond it numbers would be divided by nearly nothing. */
 const LEAST_WEIGHT = 1e-30;
 /** Lags spread at a time. */
 const ROWS = 256;
+/** Numbers of a cache line, as common processors have them. */
+const LINE = 8;
 
 /**
  * Length of the longest transform for a reach: a third of it at least is new ticks, and the shortest run that counts fits.
@@ -72,7 +101,7 @@ export class LagSums {
     const size = longestTransform(reach) + 2;
     const points = Math.max(0, ...grid.panels.map(({ count }) => count));
     const spectra = 1.5 * pairs * (size + 16);
-    const transforms = 2 * channels * (size + 16) + 12 * size;
+    const transforms = 1.5 * (2 * TOGETHER * channels + 1) * (size + 16) + 12 * size;
     const spreading = ROWS * (pairs + points) + pairs * points;
     this.#kernels = createKernels(8 * Math.ceil(spectra + transforms + spreading + rows) + 65_536);
   }
@@ -100,48 +129,51 @@ export class LagSums {
     const kernels = this.#kernels;
     const block = later[0].length;
     const window = earlier[0].length;
-    const { size, pairs } = this.#spectraOf(window);
-    const half = size / 2 + 1;
-    const mark = kernels.mark();
-    const x = kernels.alloc64(size);
-    const transform = (row: Float64Array, from: number): Float64Array => {
-      const out = kernels.alloc64(2 * half);
-      x.fill(0);
-      x.set(row, from);
-      kernels.realFft(x, out.subarray(0, half), out.subarray(half), size);
-      return out;
-    };
-    const windows = earlier.map((row) => transform(row, 0));
+    const spectra = this.#spectraOf(window);
+    const { windows, own } = spectra.blocks[spectra.fresh];
     const weight = 1 / this.#weight;
-    const blocks = later.map((row) => {
-      const own = transform(row, window - block);
-      if (weight !== 1) kernels.scale(own, weight, own.length);
-      return own;
-    });
-    for (let from = 0; from < half; from += TILE) {
-      const to = Math.min(half, from + TILE);
+    for (let c = 0; c < this.#channels; c++) {
+      this.#transform(spectra, earlier[c], 0, windows[c]);
+      this.#transform(spectra, later[c], window - block, own[c]);
+      if (weight !== 1) kernels.scale(own[c], weight, own[c].length);
+    }
+    spectra.fresh++;
+    if (spectra.fresh === TOGETHER) this.#addFresh(spectra);
+  }
+
+  #transform({ size, x }: Spectra, row: Float64Array, from: number, out: Float64Array): void {
+    const half = size / 2 + 1;
+    x.fill(0, 0, from);
+    x.set(row, from);
+    x.fill(0, from + row.length);
+    this.#kernels.realFft(x, out.subarray(0, half), out.subarray(half), size);
+  }
+
+  /** Adds what was transformed, block after block for each pair. */
+  #addFresh(spectra: Spectra): void {
+    const kernels = this.#kernels;
+    for (const { pairs, blocks } of spectra.tiles) {
+      const count = pairs[0].re.length;
       for (let i = 0; i < this.#channels; i++) {
-        const bRe = blocks[i].subarray(from, to);
-        const bIm = blocks[i].subarray(half + from, half + to);
         for (let j = 0; j < this.#channels; j++) {
-          const pair = pairs[i * this.#channels + j];
-          kernels.spectraAdd(
-            pair.subarray(from, to),
-            pair.subarray(half + from, half + to),
-            windows[j].subarray(from, to),
-            windows[j].subarray(half + from, half + to),
-            bRe,
-            bIm,
-            to - from,
-          );
+          const { re, im } = pairs[i * this.#channels + j];
+          for (let k = 0; k < spectra.fresh; k++) {
+            const { windows, own } = blocks[k];
+            kernels.spectraAdd(re, im, windows[j].re, windows[j].im, own[i].re, own[i].im, count);
+          }
         }
       }
     }
-    kernels.release(mark);
+    spectra.fresh = 0;
+  }
+
+  #addAllFresh(): void {
+    for (const spectra of this.#spectra) this.#addFresh(spectra);
   }
 
   /** Takes all that is in along, or brings it back into sums of nothing. */
   carry(carrier: Carrier): void {
+    this.#addAllFresh();
     this.#weight = carrier.number(this.#weight);
     const count = carrier.number(this.#spectra.length);
     for (let n = 0; n < count; n++) {
@@ -154,6 +186,7 @@ export class LagSums {
   scale(factor: number): void {
     this.#weight *= factor;
     if (this.#weight > LEAST_WEIGHT) return;
+    this.#addAllFresh();
     for (const { pairs } of this.#spectra)
       for (const pair of pairs) this.#kernels.scale(pair, this.#weight, pair.length);
     this.#weight = 1;
@@ -170,6 +203,7 @@ export class LagSums {
    */
   drain(into: Float64Array): void {
     const kernels = this.#kernels;
+    this.#addAllFresh();
     for (const { size, pairs } of this.#spectra) {
       const half = size / 2 + 1;
       const mark = kernels.mark();
@@ -230,14 +264,16 @@ export class LagSums {
     const sums = kernels.alloc64(pairs.length * count);
     const rows = kernels.alloc64(ROWS * pairs.length);
     const shares = kernels.alloc64(ROWS * count);
+    const countsOf = new Float64Array(ROWS);
     for (let first = from; first < to; first += ROWS) {
       const some = Math.min(ROWS, to - first);
       for (let r = 0; r < some; r++) {
         const lag = start + (first + r) * stride;
         const counts = share(lag);
         sharesOf(panel, lag, shares.subarray(r * count, (r + 1) * count));
-        for (let n = 0; n < pairs.length; n++) rows[r * pairs.length + n] = counts * pairs[n][first + r];
+        countsOf[r] = counts;
       }
+      turnRows(pairs, first, countsOf.subarray(0, some), rows);
       const a = rows.subarray(0, some * pairs.length);
       kernels.productAdd(sums, a, shares.subarray(0, some * count), some, pairs.length, count);
     }
@@ -260,9 +296,43 @@ export class LagSums {
   #spectraOfSize(size: number): Spectra {
     const found = this.#spectra.find((spectra) => spectra.size === size);
     if (found !== undefined) return found;
-    const pairs = Array.from({ length: this.#channels * this.#channels }, () => this.#kernels.alloc64(size + 2));
-    const spectra = { size, pairs };
+    const take = (count: number) => Array.from({ length: count }, () => this.#kernels.alloc64(size + 2));
+    const pairs = take(this.#channels * this.#channels);
+    const blocks = Array.from({ length: TOGETHER }, () => ({
+      windows: take(this.#channels),
+      own: take(this.#channels),
+    }));
+    const x = this.#kernels.alloc64(size);
+    const spectra: Spectra = { size, pairs, x, blocks, fresh: 0, tiles: tilesOf(size, pairs, blocks) };
     this.#spectra.push(spectra);
     return spectra;
+  }
+}
+
+function tilesOf(size: number, pairs: readonly Float64Array[], blocks: readonly Block[]): Tile[] {
+  const half = size / 2 + 1;
+  return Array.from({ length: Math.ceil(half / TILE) }, (_, n) => {
+    const from = n * TILE;
+    const to = Math.min(half, from + TILE);
+    const part = (spectrum: Float64Array): Part => ({
+      re: spectrum.subarray(from, to),
+      im: spectrum.subarray(half + from, half + to),
+    });
+    return {
+      pairs: pairs.map(part),
+      blocks: blocks.map(({ windows, own }) => ({ windows: windows.map(part), own: own.map(part) })),
+    };
+  });
+}
+
+/** Lags of all sequences turned into rows by lag, each times what it counts; a few lags at a time, as many as a cache line has. */
+function turnRows(pairs: readonly Float64Array[], first: number, counts: Float64Array, rows: Float64Array): void {
+  const width = pairs.length;
+  for (let from = 0; from < counts.length; from += LINE) {
+    const to = Math.min(from + LINE, counts.length);
+    for (let n = 0; n < width; n++) {
+      const pair = pairs[n];
+      for (let r = from; r < to; r++) rows[r * width + n] = counts[r] * pair[first + r];
+    }
   }
 }
