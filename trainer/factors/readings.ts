@@ -20,6 +20,14 @@ const ABSENT = 2;
 /** An input in a long gap. */
 const HELD = 3;
 
+/** (nc) of (ticks) each: readings as they came, completed, less their offsets, and what each tick is. */
+interface Room {
+  readonly raw: readonly Float64Array[];
+  readonly complete: readonly Float64Array[];
+  readonly aboutOffsets: readonly Float64Array[];
+  readonly status: readonly Uint8Array[];
+}
+
 /** Readings on their way into the books. */
 export class Readings {
   readonly #shape: FactorsShape;
@@ -34,6 +42,7 @@ export class Readings {
   /** (nc) of ticks that wait, NaN missing; and 1 where they are excluded. The newest is not yet held against its next. */
   #waiting: Float64Array[];
   #isExcluded: Uint8Array;
+  #room: Room | null = null;
 
   constructor(shape: FactorsShape, book: RunBook, from: { offsets: Float64Array; waiting: Waiting } | null) {
     this.#shape = shape;
@@ -101,31 +110,42 @@ export class Readings {
     const held = this.#isExcluded.length;
     const ticks = held + isExcluded.length;
     if (isExcluded.length === 0) return;
-    const raw = values.map((row, c) => {
-      const out = new Float64Array(ticks);
-      out.set(this.#waiting[c]);
-      out.set(row, held);
-      return out;
-    });
+    const { raw, complete, status, aboutOffsets } = this.#roomFor(ticks);
     const excluded = new Uint8Array(ticks);
     excluded.set(this.#isExcluded);
     excluded.set(isExcluded, held);
-    // Wild readings go where their next is there: from the newest of before on.
-    this.#watches.forEach((watch, c) => {
-      for (let t = Math.max(0, held - 1); t < ticks - 1; t++) {
-        if (!Number.isFinite(raw[c][t]) || watch.isWild(raw[c][t], raw[c][t + 1])) raw[c][t] = Number.NaN;
-      }
-    });
-    const complete = raw.map((row) => row.slice());
-    const status = raw.map(() => new Uint8Array(ticks));
     let settled = ticks - 1;
-    complete.forEach((row, c) => {
-      settled = Math.min(settled, this.#bridge(row, status[c], c, ticks - 1));
-    });
-    this.#hand(complete, status, excluded, settled);
+    for (let c = 0; c < raw.length; c++) {
+      const row = raw[c];
+      row.set(this.#waiting[c]);
+      row.set(values[c], held);
+      // Wild readings go where their next is there: from the newest of before on.
+      this.#watches[c]?.passOver(row, Math.max(0, held - 1), ticks - 1);
+      complete[c].set(row);
+      status[c].fill(HERE);
+      settled = Math.min(settled, this.#bridge(complete[c], status[c], c, ticks - 1));
+    }
+    this.#hand(complete, status, excluded, settled, aboutOffsets);
     for (let c = 0; c < raw.length; c++) this.#remember(c, complete[c], status[c], settled);
     this.#waiting = raw.map((row) => row.slice(settled));
     this.#isExcluded = excluded.slice(settled);
+  }
+
+  /** Room for so many ticks, used again from chunk to chunk; whatever was there before is there still. */
+  #roomFor(ticks: number): Room {
+    if (this.#room === null || this.#room.raw[0].length < ticks) {
+      const rows = () => this.#waiting.map(() => new Float64Array(ticks));
+      const status = this.#waiting.map(() => new Uint8Array(ticks));
+      this.#room = { raw: rows(), complete: rows(), aboutOffsets: rows(), status };
+    }
+    const { raw, complete, aboutOffsets, status } = this.#room;
+    const part = (row: Float64Array) => row.subarray(0, ticks);
+    return {
+      raw: raw.map(part),
+      complete: complete.map(part),
+      aboutOffsets: aboutOffsets.map(part),
+      status: status.map((row) => row.subarray(0, ticks)),
+    };
   }
 
   /** Completes a channel up to `end` and says from where on it must wait. */
@@ -155,12 +175,19 @@ export class Readings {
     return end;
   }
 
-  /** Hands settled ticks to the books, stretch by stretch. */
-  #hand(values: readonly Float64Array[], status: readonly Uint8Array[], excluded: Uint8Array, end: number): void {
-    const u = this.#aboutOffsets(values, status, end);
-    const isWhole = !excluded.includes(1) && status.every((row) => !row.includes(GONE) && !row.includes(ABSENT));
+  /** Hands settled ticks to the books, stretch by stretch; `u` is room for what they get. */
+  #hand(
+    values: readonly Float64Array[],
+    status: readonly Uint8Array[],
+    excluded: Uint8Array,
+    end: number,
+    u: readonly Float64Array[],
+  ): void {
+    const isWhole = status.map((row) => !row.includes(GONE) && !row.includes(ABSENT));
+    for (let c = 0; c < u.length; c++) this.#aboutOffset(c, values[c], status[c], isWhole[c], end, u[c]);
+    const isOne = !excluded.includes(1) && isWhole.every(Boolean);
     for (let t = 0; t < end; ) {
-      let to = isWhole ? end : t + 1;
+      let to = isOne ? end : t + 1;
       while (to < end && excluded[to] === excluded[t] && status.every((row) => row[to] === row[t])) to++;
       if (excluded[t] === 1 || this.#isDead(status, t)) {
         this.#book.close();
@@ -182,17 +209,21 @@ export class Readings {
     return away === this.#shape.signalCount;
   }
 
-  #aboutOffsets(values: readonly Float64Array[], status: readonly Uint8Array[], end: number): Float64Array[] {
-    return values.map((row, c) => {
-      if (Number.isNaN(this.offsets[c])) {
-        const first = status[c].subarray(0, end).findIndex(isHere);
-        if (first >= 0) this.offsets[c] = row[first];
-      }
-      const offset = this.offsets[c];
-      const out = new Float64Array(end);
-      for (let t = 0; t < end; t++) out[t] = isHere(status[c][t]) ? row[t] - offset : 0;
-      return out;
-    });
+  #aboutOffset(
+    c: number,
+    row: Float64Array,
+    status: Uint8Array,
+    isWhole: boolean,
+    end: number,
+    out: Float64Array,
+  ): void {
+    if (Number.isNaN(this.offsets[c])) {
+      const first = status.subarray(0, end).findIndex(isHere);
+      if (first >= 0) this.offsets[c] = row[first];
+    }
+    const offset = this.offsets[c];
+    if (isWhole) for (let t = 0; t < end; t++) out[t] = row[t] - offset;
+    else for (let t = 0; t < end; t++) out[t] = isHere(status[t]) ? row[t] - offset : 0;
   }
 
   #remember(c: number, row: Float64Array, status: Uint8Array, end: number): void {

@@ -28,9 +28,16 @@ export class WildWatch {
   readonly #largestOf = new Float64Array(STRETCHES);
   #limit = Number.POSITIVE_INFINITY;
 
+  /** Marks as missing what is no number or wild in from..to, whose next are there. */
+  passOver(row: Float64Array, from: number, to: number): void {
+    for (let t = from; t < to; t++) {
+      const value = row[t];
+      if (value - value !== 0 || this.#isWild(value, row[t + 1])) row[t] = Number.NaN;
+    }
+  }
+
   /** Whether `value` is wild, given the reading at the next tick; NaN where there is none. */
-  isWild(value: number, next: number): boolean {
-    if (Number.isNaN(value)) return false;
+  #isWild(value: number, next: number): boolean {
     const last = this.#last;
     if (Number.isNaN(last)) {
       this.#last = value;
