@@ -90,8 +90,10 @@ export function openEnvelope(
   if (bytes.length < expected) return refuse(`cut short: ${bytes.length} bytes, expected ${expected}`);
   if (bytes.length > expected) return refuse(`${bytes.length - expected} bytes too many, expected ${expected}`);
   if (digestOf(bytes).compare(bytes.subarray(24, HEAD_AT)) !== 0) return refuse('damaged: its SHA-256 does not match');
-  // A copy, since the body need not lie on a multiple of eight in the memory it came in.
-  const body = new Float64Array(Uint8Array.from(bytes.subarray(HEAD_AT + headBytes)).buffer);
+  // Copied only where it does not lie on a multiple of eight in the memory it came in.
+  const rest = bytes.subarray(HEAD_AT + headBytes);
+  const { buffer, byteOffset, byteLength } = rest.byteOffset % 8 === 0 ? rest : Uint8Array.from(rest);
+  const body = new Float64Array(buffer, byteOffset, byteLength / 8);
   return { head: new TextDecoder().decode(bytes.subarray(HEAD_AT, HEAD_AT + headBytes)), body };
 }
 

@@ -99,7 +99,16 @@ export class FactorsGatherer {
 
   /** What is in so far; more may follow. */
   end(): Factors {
-    const books = this.#book.read();
+    return this.#factors(false);
+  }
+
+  /** The same without copies of what is large, to be written down before anything follows. */
+  lend(): Factors {
+    return this.#factors(true);
+  }
+
+  #factors(isLent: boolean): Factors {
+    const books = this.#book.read(isLent);
     return Object.freeze({
       ...this.#shape,
       fromTick: this.#fromTick ?? 0,

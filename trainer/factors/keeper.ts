@@ -54,31 +54,30 @@ export class FactorsKeeper {
 
   /** What is in so far, for learning; null where nothing is. */
   earlier(): Earlier | null {
-    const factors = this.#gathered();
-    return factors && earlierOf(factors);
+    const factors = this.#gatherer?.end();
+    return holds(factors) ? earlierOf(factors) : null;
   }
 
   /** The same as a file has it, for another thread. */
   earlierBytes(): Uint8Array | null {
-    const factors = this.#gathered();
-    return factors && encodeFactors(factors);
-  }
-
-  #gathered(): Factors | null {
-    const factors = this.#gatherer?.end();
-    return factors === undefined || factors.ticks === 0 ? null : factors;
+    const factors = this.#gatherer?.lend();
+    return holds(factors) ? encodeFactors(factors) : null;
   }
 
   /** Takes in the window and gives the file's bytes; null where the site goes without. */
   close(window: Series): Uint8Array | null {
     if (this.#gatherer === null) return null;
     this.#gatherer.take(window);
-    return encodeFactors(this.#gatherer.end());
+    return encodeFactors(this.#gatherer.lend());
   }
 
   #shape() {
     return shapeOf(this.#site, this.#halfLifeTicks);
   }
+}
+
+function holds(factors: Factors | undefined): factors is Factors {
+  return factors !== undefined && factors.ticks > 0;
 }
 
 /** What a person should know where a history is longer than what was learned from. */

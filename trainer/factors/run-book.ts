@@ -124,8 +124,8 @@ export class RunBook {
     this.#age(ticks);
   }
 
-  /** All of it so far; the open run goes on. */
-  read(): Books {
+  /** All of it so far; the open run goes on. `isLent`: the sums themselves, good until the next ticks come, no copy. */
+  read(isLent: boolean): Books {
     const isKept = this.#isThere !== null && this.#sumUp();
     // As if the run ended now, since sums are over ended runs; what that adds is taken back as after a restart.
     if (isKept) this.#far?.addRest(this.#rows(), 1);
@@ -134,7 +134,7 @@ export class RunBook {
     this.#far?.drain(this.#sums.lagged);
     const ends = isKept ? [...this.#ends, this.#endOfRun()] : this.#ends;
     const books = {
-      sums: this.#sums.copy(),
+      sums: isLent ? this.#sums : this.#sums.copy(),
       ends: [...ends],
       rungOut: addRungOut(this.#rungOut, 1, null),
       open: this.#openRun(),
