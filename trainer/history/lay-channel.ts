@@ -8,11 +8,33 @@ import type { ChannelReadings } from './history.ts';
 import type { Plausible } from './plausible.ts';
 import type { Lattice } from './resolution.ts';
 
-/** Which ticks. */
-export interface LaidSpan {
+/** Which ticks channels are laid on. */
+export class LaidSpan {
   readonly tickMs: number;
   readonly first: number;
   readonly ticks: number;
+  #times: Float64Array | null = null;
+  #places = new Int32Array(0);
+
+  constructor(tickMs: number, first: number, ticks: number) {
+    this.tickMs = tickMs;
+    this.first = first;
+    this.ticks = ticks;
+  }
+
+  /** Index of each time's tick, -1 outside; kept, since channels of one file share their times. */
+  placesOf(times: Float64Array): Int32Array {
+    if (times === this.#times) return this.#places;
+    const { tickMs, first, ticks } = this;
+    const places = new Int32Array(times.length);
+    for (let i = 0; i < places.length; i++) {
+      const k = Math.floor((times[i] as number) / tickMs) - first;
+      places[i] = k >= 0 && k < ticks ? k : -1;
+    }
+    this.#times = times;
+    this.#places = places;
+    return places;
+  }
 }
 
 /**
@@ -92,20 +114,22 @@ function layLast(
   { times, values }: ChannelReadings,
   lattice: Lattice | null,
   order: Uint32Array | null,
-  { tickMs, first }: LaidSpan,
+  span: LaidSpan,
   { low, high, isDeclared }: Plausible,
   untilMs: number,
   laid: Float64Array,
 ): void {
   const furthest = lattice === null ? Number.MAX_VALUE : Number.MAX_SAFE_INTEGER * lattice.step;
-  for (let n = 0; n < times.length; n++) {
+  const isBounded = isDeclared || untilMs === Number.POSITIVE_INFINITY;
+  const places = span.placesOf(times);
+  for (let n = 0; n < places.length; n++) {
     const i = order === null ? n : (order[n] as number);
     const value = values[i] as number;
-    const time = times[i] as number;
-    const isTaken = isDeclared || time < untilMs ? value >= low && value <= high : Math.abs(value) <= furthest;
+    const isTaken =
+      isBounded || (times[i] as number) < untilMs ? value >= low && value <= high : Math.abs(value) <= furthest;
     if (!isTaken) continue;
-    const k = Math.floor(time / tickMs) - first;
-    if (k >= 0 && k < laid.length) laid[k] = value;
+    const k = places[i] as number;
+    if (k >= 0) laid[k] = value;
   }
   if (lattice === null) return;
   const { step, offset } = lattice;

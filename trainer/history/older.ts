@@ -10,7 +10,7 @@ import { believe, type Remembered, remember } from '../exclusions.ts';
 import { TickValue } from './aggregate.ts';
 import { channelsOf } from './channels.ts';
 import type { ChannelReadings, History } from './history.ts';
-import { layChannel } from './lay-channel.ts';
+import { LaidSpan, layChannel } from './lay-channel.ts';
 import { type Plausible, plausibleSpan } from './plausible.ts';
 import { type Group, mergeReadings, type RecentReadings } from './recent.ts';
 import type { Series } from './series.ts';
@@ -120,7 +120,7 @@ export class OlderTicks {
     const { seen, mark } = believe(history, this.#site, this.#remembered, historyOf(ahead, this.#site));
     this.#remembered = remember(history, this.#site, this.#remembered, toTick * this.#site.tickMs);
     const { tickMs } = this.#site;
-    const span = { tickMs, first: fromTick, ticks: toTick - fromTick };
+    const span = new LaidSpan(tickMs, fromTick, toTick - fromTick);
     const values = seen.channels.map((channel, c) => {
       const signal = this.#channels[c] as Signal;
       const lattice = signal.resolution === null ? null : { step: signal.resolution, offset: 0 };

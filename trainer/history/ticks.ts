@@ -8,7 +8,7 @@ import type { Signal, Site } from '@stillwell/protocol';
 import { TrainError } from '../errors.ts';
 import { channelsOf } from './channels.ts';
 import type { ChannelReadings, History } from './history.ts';
-import { layChannel } from './lay-channel.ts';
+import { LaidSpan, layChannel } from './lay-channel.ts';
 import { type Plausibility, type Plausible, plausibilityOf } from './plausible.ts';
 import { findLattices, type Lattice } from './resolution.ts';
 import type { Series } from './series.ts';
@@ -93,13 +93,14 @@ export function layOnTicks(
   const orders = new Map<Float64Array, Uint32Array | null>();
   for (const { times } of history.channels) if (!orders.has(times)) orders.set(times, timeOrder(times));
   const channels = channelsOf(site);
+  const laidSpan = new LaidSpan(tickMs, span.first, ticks);
   const values = history.channels.map((channel, c) =>
     layChannel(
       channel,
       channels[c] as Signal,
       lattices[c] as Lattice,
       orders.get(channel.times) ?? null,
-      { tickMs, first: span.first, ticks },
+      laidSpan,
       spans[c] as Plausible,
       untilMs,
     ),
