@@ -89,6 +89,11 @@ export class ColumnStream implements ReadingStream {
     return all > 0 ? Math.round((this.#file.bytes * this.rows) / all) : 0;
   }
 
+  /** Share of a wide file's rows that was read; 1 in a long one, where one signal may follow another. */
+  get share(): number {
+    return this.#plan?.format === 'wide Parquet' ? this.rows / this.#plan.rows : 1;
+  }
+
   get account(): FileRead {
     return this.#account as FileRead;
   }

@@ -51,7 +51,7 @@ async function readOne(
     const stream = new ColumnStream(file, site, gathering, times, engine, { state: null, previous: null });
     while (await stream.more()) {
       onBytes(stream.bytesDone, stream.rows);
-      if (!watch?.isPassed(gathering)) continue;
+      if (!watch?.isPassed(gathering, stream.share)) continue;
       await stream.close();
       throw new TooLong();
     }

@@ -3,8 +3,8 @@ import type { Block, Gathering } from './gathering.ts';
 
 /** Looks at what a reader gathers. */
 export interface Watch {
-  /** True once it is too much. */
-  isPassed(gathering: Gathering): boolean;
+  /** True once it is too much. `share` is what was read of the only file so far, where its rows are spread evenly as a rule. */
+  isPassed(gathering: Gathering, share?: number): boolean;
 }
 
 /** Passed by a number of values; keeps what was gathered until then. */
@@ -24,7 +24,13 @@ export class SizeWatch implements Watch {
   }
 }
 
-/** Passed by a span of ticks; looks at each reading once. */
+/** How much too long a history must seem from the first rows of a file for these to settle it. */
+const BY_FAR = 2;
+
+/**
+ * Passed by a span of ticks; looks at each reading once. A file that will pass it by far, if it goes on as it began, passes at
+ * once: little is read twice then, and where it does not go on so, the way of long histories serves short ones as well.
+ */
 export class SpanWatch implements Watch {
   readonly #tickMs: number;
   readonly #mostTicks: number;
@@ -38,7 +44,7 @@ export class SpanWatch implements Watch {
   }
 
   /** True once the readings so far span more ticks. */
-  isPassed(gathering: Gathering): boolean {
+  isPassed(gathering: Gathering, share = 1): boolean {
     for (const block of gathering.blocks) {
       for (const time of block.times.view(this.#seen.get(block) ?? 0)) {
         if (time < this.#least) this.#least = time;
@@ -47,6 +53,7 @@ export class SpanWatch implements Watch {
       this.#seen.set(block, block.times.length);
     }
     const { floor } = Math;
-    return floor(this.#most / this.#tickMs) - floor(this.#least / this.#tickMs) + 1 > this.#mostTicks;
+    const ticks = floor(this.#most / this.#tickMs) - floor(this.#least / this.#tickMs) + 1;
+    return ticks > this.#mostTicks || (gathering.blocks.length === 1 && ticks > BY_FAR * this.#mostTicks * share);
   }
 }
