@@ -7,7 +7,7 @@ import { CROSSING_KNOTS } from '@stillwell/protocol';
 import type { Model, OwnCrossingMap } from '@stillwell/runtime/filter';
 import type { Series } from '../history/series.ts';
 import type { TickSpan } from '../span.ts';
-import { type AskedLimit, askEvery, type CrossingPair, Crossings, usualLimits } from './crossings.ts';
+import { type AskedLimit, askEvery, type CrossingPair, Crossings, clipped, usualLimits } from './crossings.ts';
 import { crossingTable } from './reliability.ts';
 import { type Moment, replay } from './replay.ts';
 
@@ -60,7 +60,7 @@ export function learnCrossing(
   const usual = usualLimits(series, { fromTick: 0, toTick: span.fromTick });
   const readings = series.values
     .slice(0, model.signalCount)
-    .map((y, i) => y.map((value) => Math.min(model.clipHigh[i], Math.max(model.clipLow[i], value))));
+    .map((y, i) => clipped(y, model.clipLow[i], model.clipHigh[i]));
   const { crossingMap: _, crossingMaps: __, ...plain } = model;
   const asked = FRESH.map((crossingFresh) => {
     const own = { ...plain, crossingFresh } as Model;

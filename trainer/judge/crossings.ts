@@ -69,6 +69,13 @@ export function usualLimits(series: Series, span: TickSpan): AskedLimit[] {
   });
 }
 
+/** Readings as the filter takes them; NaN stays NaN. In a loop, since what a callback returns is put on the heap, one by one. */
+export function clipped(y: Float64Array, low: number, high: number): Float64Array {
+  const out = new Float64Array(y.length);
+  for (let t = 0; t < y.length; t++) out[t] = Math.min(high, Math.max(low, y[t]));
+  return out;
+}
+
 /** Gathers pairs as a replay goes along. */
 export class Crossings {
   readonly pairs: CrossingPair[] = [];

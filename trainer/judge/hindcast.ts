@@ -9,7 +9,7 @@ import type { Model } from '@stillwell/runtime/filter';
 import { withoutExcluded } from '../exclusions.ts';
 import type { Series } from '../history/series.ts';
 import type { TickSpan } from '../span.ts';
-import { type AskedLimit, askEvery, Crossings, usualLimits } from './crossings.ts';
+import { type AskedLimit, askEvery, Crossings, clipped, usualLimits } from './crossings.ts';
 import { type PlanTrial, plannerOf } from './plan-trial.ts';
 import { type Reliability, reliabilityOf } from './reliability.ts';
 import { replay } from './replay.ts';
@@ -105,10 +105,11 @@ export function hindcast(model: Model, series: Series, span: HindcastSpan, units
   const seen = series.values.slice(0, ny).map((y, i) => clipped(y, clipLow[i], clipHigh[i]));
   const readings = withoutExcluded({ ...series, values: seen }).values;
   const carry = (y: Float64Array, i: number): Float64Array => carryForward(y, model.mean[i]);
+  const carried = seen.map(carry);
   const learn = within(span.learn, series);
   const rivals = makeRivals({
-    carried: seen.map(carry),
-    taught: readings.map(carry),
+    carried,
+    taught: readings === seen ? carried : readings.map(carry),
     horizon: H,
     periodTicks: model.seasonalPeriod,
     tickMs: series.tickMs,
@@ -136,11 +137,6 @@ export function hindcast(model: Model, series: Series, span: HindcastSpan, units
   const isDeclared = limits.length > 0;
   const reliability = crossings.pairs.length > 0 ? reliabilityOf(crossings.pairs, asked.length, isDeclared) : null;
   return Object.freeze({ ...tally.result(model, series, units), reliability });
-}
-
-/** NaN stays NaN. */
-function clipped(y: Float64Array, low: number, high: number): Float64Array {
-  return y.map((value) => Math.min(high, Math.max(low, value)));
 }
 
 /** The span as indices, or null where the series does not hold all of it. */

@@ -66,11 +66,13 @@ export function makeRivals(input: RivalInput): Rival[] {
  * A copy with every missing reading replaced by the last before it; before the first, by `start`.
  */
 export function carryForward(y: Float64Array, start: number): Float64Array {
+  const out = new Float64Array(y.length);
   let last = start;
-  return y.map((value) => {
-    if (Number.isFinite(value)) last = value;
-    return last;
-  });
+  for (let t = 0; t < y.length; t++) {
+    if (Number.isFinite(y[t])) last = y[t];
+    out[t] = last;
+  }
+  return out;
 }
 
 function persistence({ carried }: RivalInput): Rival {
