@@ -13,6 +13,9 @@ import { WildWatch } from './wild.ts';
 /** A signal silent for this many long gaps is absent. */
 const ABSENT_GAPS = 8;
 
+/** Ticks of the longest chunk whose room is kept for the next. */
+const MOST_KEPT = 32_768;
+
 /** Of a channel at a tick. */
 const HERE = 0;
 const GONE = 1;
@@ -133,12 +136,15 @@ export class Readings {
 
   /** Room for so many ticks, used again from chunk to chunk; whatever was there before is there still. */
   #roomFor(ticks: number): Room {
-    if (this.#room === null || this.#room.raw[0].length < ticks) {
+    let room = this.#room;
+    if (room === null || room.raw[0].length < ticks) {
       const rows = () => this.#waiting.map(() => new Float64Array(ticks));
       const status = this.#waiting.map(() => new Uint8Array(ticks));
-      this.#room = { raw: rows(), complete: rows(), aboutOffsets: rows(), status };
+      room = { raw: rows(), complete: rows(), aboutOffsets: rows(), status };
+      // A window comes once, and its room would only take memory.
+      this.#room = ticks <= MOST_KEPT ? room : null;
     }
-    const { raw, complete, aboutOffsets, status } = this.#room;
+    const { raw, complete, aboutOffsets, status } = room;
     const part = (row: Float64Array) => row.subarray(0, ticks);
     return {
       raw: raw.map(part),
