@@ -14,6 +14,7 @@ export type ProtocolErrorCode =
   | 'fleet-file'
   | 'payload'
   | 'plan'
+  | 'question'
   | 'topic'
   | 'tensor'
   | 'segment';

@@ -108,7 +108,21 @@ export interface ForecastFacts extends MessageHead {
   readonly lastReadingMs: number | null;
 }
 
-const outlookFields = (outlook: InputOutlook): z.output<typeof inputOutlookSchema> => ({
+/** As it stands in JSON. */
+export const limitOutlookFields = ({
+  limit,
+  value,
+  probability,
+  timeMs,
+}: LimitOutlook): z.output<typeof limitOutlookSchema> => ({
+  limit,
+  value,
+  probability,
+  time: timeMs === null ? null : formatInstant(timeMs),
+});
+
+/** As it stands in JSON. */
+export const outlookFields = (outlook: InputOutlook): z.output<typeof inputOutlookSchema> => ({
   input: outlook.input,
   unit: outlook.unit,
   use: outlook.use,
@@ -154,12 +168,7 @@ export const forecastMessage = (facts: ForecastFacts): Uint8Array => {
     median: Array.from(facts.median),
     lower: Array.from(facts.lower),
     upper: Array.from(facts.upper),
-    limits: facts.limits.map(({ limit, value, probability, timeMs }) => ({
-      limit,
-      value,
-      probability,
-      time: timeMs === null ? null : formatInstant(timeMs),
-    })),
+    limits: facts.limits.map(limitOutlookFields),
     inputs: facts.inputs,
     ...(facts.inputsAhead?.length ? { inputs_ahead: facts.inputsAhead.map(outlookFields) } : {}),
     last_reading_at: facts.lastReadingMs === null ? null : formatInstant(facts.lastReadingMs),

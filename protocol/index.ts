@@ -1,3 +1,13 @@
+export {
+  type AnswerFacts,
+  type AnswerMessage,
+  type AnswerPaths,
+  type AnswerTo,
+  answerMessage,
+  parseAnswerMessage,
+  type Refusal,
+  refusalMessage,
+} from './answer.ts';
 export * from './bundle.ts';
 export { bundleDigest, decodeBundle, encodeBundle } from './bundle-document.ts';
 export type { DrivenTensors, FeatureTensors } from './bundle-features.ts';
@@ -32,6 +42,7 @@ export { nearestName } from './nearest.ts';
 export { type PayloadReason, refusalText } from './payload/refusal.ts';
 export * from './plan.ts';
 export { isPointer, pointerTokens, resolvePointer } from './pointer.ts';
+export { parseQuestion, type Question, type QuestionReason, type QuestionRules } from './question.ts';
 export type { ReadingTarget } from './reading-target.ts';
 export * from './receipt.ts';
 export { bundleSchemaHash, describeSchemaDifference, schemaHash } from './schema-hash.ts';

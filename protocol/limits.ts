@@ -56,6 +56,9 @@ export const MAX_TOPIC_BYTES = 65_535;
 /** Receipts in one message: a window of segments is a few; a catch-up after an outage is split. */
 export const MAX_RECEIPT_SEGMENTS = 1024;
 
+/** An asker's own mark in a question, said again in the answer; a UUID as text takes 36. */
+export const MAX_ID_BYTES = 64;
+
 /** Values in one plan: the longest horizon at four values a tick. */
 export const MAX_PLAN_VALUES = 4096;
 

@@ -124,8 +124,7 @@ const documentOf = (payload: Uint8Array): unknown => {
 const fieldsAt = (path: readonly PropertyKey[]): readonly string[] =>
   Object.keys(path.length === 0 ? planSchema.shape : planPointSchema.shape);
 
-const fieldsOf = (payload: Uint8Array): PlanFields => {
-  const document = documentOf(payload);
+const fieldsOf = (document: unknown): PlanFields => {
   const map = Array.isArray(document) ? { points: document } : document;
   const lists = typeof map === 'object' && map !== null ? (map as Record<string, unknown>) : {};
   for (const key of ['values', 'points']) {
@@ -192,8 +191,11 @@ const checkTimes = ({ timesMs, endMs }: Plan, rules: PlanRules): void => {
  * throws  ProtocolError 'plan' with expected and got, and `details.reason` (PlanReason) for counting
  * note    points without an end reach to one tick after the last: a value told once is not told for ever
  */
-export const parsePlan = (payload: Uint8Array, rules: PlanRules): Plan => {
-  const plan = seriesOf(fieldsOf(payload), rules.tickMs);
+export const parsePlan = (payload: Uint8Array, rules: PlanRules): Plan => readPlan(documentOf(payload), rules);
+
+/** The same of what a payload holds; throws as parsePlan, but for size and syntax. */
+export const readPlan = (document: unknown, rules: PlanRules): Plan => {
+  const plan = seriesOf(fieldsOf(document), rules.tickMs);
   checkTimes(plan, rules);
   if (rules.range !== null) {
     const [low, high] = rules.range;

@@ -7,10 +7,11 @@ import { BundleKeeper } from './bundle/change.ts';
 import { BundleIntake } from './bundle/intake.ts';
 import type { GatewayConfig } from './config.ts';
 import { Engine } from './engine.ts';
-import { type Connection, type ConnectionEvent, openConnection } from './mqtt/connection.ts';
+import { type Connection, type ConnectionEvent, type IncomingPacket, openConnection } from './mqtt/connection.ts';
 import { dispatch, filtersOf } from './mqtt/subscriptions.ts';
 import type { GatewayPorts } from './ports.ts';
 import { Publisher } from './publish/publisher.ts';
+import { type QuestionPorts, Questions } from './questions/questions.ts';
 import { GroupSync } from './residuals/group-sync.ts';
 import { takeReceipt } from './residuals/receipts.ts';
 import { Shipper } from './residuals/ship.ts';
@@ -43,6 +44,7 @@ export class Gateway {
   readonly #groupSync: GroupSync;
   readonly #connection: Connection;
   readonly #publisher: Publisher;
+  readonly #questions: Questions;
   #status: HealthStatus = 'starting';
   #cancelPulse: () => void = () => {};
   #isPublishDue = false;
@@ -85,6 +87,16 @@ export class Gateway {
     this.#groupSync = new GroupSync({ clock, sync: async () => this.engine.journal?.syncSoon() });
     this.#connection = this.#connect();
     this.#publisher = new Publisher(config, ports, this.#connection, this.#topics);
+    this.#questions = new Questions({
+      site,
+      gateway,
+      topics: this.#topics,
+      log,
+      monotonic: () => clock.monotonic(),
+      present: () => this.#present(),
+      nowMs: () => this.#nowMs(),
+      publish: (message) => this.#connection.publish(message),
+    });
     this.#shipper = new Shipper({
       spool: this.engine.spool,
       clock,
@@ -145,7 +157,7 @@ export class Gateway {
       sessionExpirySeconds: SESSION_EXPIRY_SECONDS,
       will: Publisher.will(this.#config, this.#ports, this.#topics.health),
       ...(firstRetryMs === undefined ? {} : { backOff: { firstMs: firstRetryMs } }),
-      onMessage: (topic, payload, { qos }) => this.#take(topic, payload, qos),
+      onMessage: (topic, payload, packet) => this.#take(topic, payload, packet),
       onState: (event) => this.#onConnection(event),
     });
   }
@@ -176,13 +188,14 @@ export class Gateway {
   }
 
   /** The promise, if any, resolves when a message of QoS 1 may be acknowledged. */
-  #take(topic: string, payload: Uint8Array, qos: number): Promise<void> | void {
+  #take(topic: string, payload: Uint8Array, packet: IncomingPacket): Promise<void> | void {
     if (this.#isStopping) return NEVER;
     try {
       dispatch(
         this.#topics,
         {
           bundle: (sealed) => void this.#intake.offer(sealed, 'from the broker'),
+          question: (bytes) => this.#questions.take(bytes, packet),
           receipt: (bytes) => takeReceipt(bytes, this.#config.gateway, this.#shipper, this.#ports.log),
           reading: (from, bytes) => {
             this.#plan(from, bytes);
@@ -195,7 +208,7 @@ export class Gateway {
     } catch (error) {
       this.#ports.log.error(`message on ${topic} not handled: ${(error as Error).message}`);
     }
-    if (qos > 0 && this.engine.journal?.isDurable === false) return this.#groupSync.wait();
+    if (packet.qos > 0 && this.engine.journal?.isDurable === false) return this.#groupSync.wait();
   }
 
   #reading(topic: string, payload: Uint8Array): void {
@@ -275,17 +288,26 @@ export class Gateway {
   #publishTick(): void {
     this.#isPublishDue = false;
     if (this.#isStopping) return;
-    const { serving, aligner } = this.engine;
-    const wall = this.#ports.clock.wall();
-    const byWall = this.#config.clock === 'wall' && wall >= CLOCK_UNSET_MS;
-    const issuedAtMs = byWall ? wall : aligner.newestMs;
-    if (serving !== null && serving.tick >= 0)
-      this.#publisher.tick(serving, this.engine.plans, aligner.lastReadingMs, issuedAtMs);
+    const { serving, plans, aligner } = this.engine;
+    const issuedAtMs = this.#issuedAtMs();
+    if (serving !== null && serving.tick >= 0) this.#publisher.tick(serving, plans, aligner.lastReadingMs, issuedAtMs);
     else if (aligner.nextTick !== null) this.#publisher.silent(aligner.nextTick - 1, issuedAtMs);
     this.#tend(false);
     const before = this.#status;
     this.#setStatus();
     if (before !== this.#status) this.#sayHealth();
+  }
+
+  /** By the wall clock, or where that is not to be believed by the newest reading. */
+  #issuedAtMs(): number {
+    return this.#nowMs() ?? this.engine.aligner.newestMs;
+  }
+
+  /** What questions are answered from. */
+  #present(): ReturnType<QuestionPorts['present']> {
+    const { serving, plans } = this.engine;
+    if (serving === null || serving.tick < 0) return null;
+    return { serving, occasion: this.#publisher.occasionOf(serving, plans, this.#issuedAtMs()) };
   }
 
   /** The disk's turn, once forecasts are out. */
@@ -319,6 +341,7 @@ export class Gateway {
       lastChange: this.#intake.lastChange,
       engine: this.engine,
       ship: this.#shipper.counts,
+      counts: { questions: this.#questions.answered, questions_refused: this.#questions.refused },
     };
   }
 }

@@ -6,3 +6,7 @@ export { RuntimeError, type RuntimeErrorCode } from './errors.ts';
 export { Gateway } from './gateway.ts';
 export type { Log } from './log.ts';
 export type { GatewayPorts } from './ports.ts';
+export { type Outlook, outlooksOf } from './publish/outlooks.ts';
+export { readingOf, trustOf } from './publish/warnings.ts';
+export { SignalWarnings, type Trust } from './publish/warnings-signal.ts';
+export { Serving } from './serving.ts';

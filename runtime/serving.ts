@@ -36,6 +36,13 @@ export interface PlanSource {
   fill(model: Model, tick: number, out: Float64Array): boolean;
 }
 
+/** Forecasts of all signals, (ny × H) each, in units. */
+export interface Paths {
+  readonly median: Float64Array;
+  readonly lower: Float64Array;
+  readonly upper: Float64Array;
+}
+
 /** See the file head. Buffers are overwritten by each step. */
 export class Serving {
   /** Replaced when the same document comes under a higher sequence. */
@@ -57,6 +64,7 @@ export class Serving {
   plans: PlanSource | null = null;
   readonly #values: Float64Array;
   readonly #plan: Float64Array;
+  #isPlanned = false;
 
   constructor(checked: CheckedBundle) {
     const { model } = checked;
@@ -121,8 +129,26 @@ export class Serving {
   replan(): void {
     const { model, state, plans } = this;
     if (state.tick < 0) return;
-    const isPlanned = plans?.fill(model, state.tick, this.#plan) ?? false;
-    forecastPath(model, state, this.median, isPlanned ? this.#plan : null);
+    this.#isPlanned = plans?.fill(model, state.tick, this.#plan) ?? false;
+    forecastPath(model, state, this.median, this.#isPlanned ? this.#plan : null);
+  }
+
+  /**
+   * Forecasts into `out` under other plans than those that stand; afterwards everything is as before, to the bit.
+   *
+   * plan  (nu × H) standardised, NaN where nothing is planned: filled with what stands, for `change` to change
+   * read  called while a kind's drawn paths are those of `out`; must not throw
+   */
+  whatIf(plan: Float64Array, change: (plan: Float64Array) => void, out: Paths, read: () => void): void {
+    const { model, state, bounds } = this;
+    if (this.#isPlanned) plan.set(this.#plan);
+    else plan.fill(Number.NaN);
+    change(plan);
+    forecastPath(model, state, out.median, plan);
+    intervalOf(model, bounds, state, out.median, out.lower, out.upper);
+    read();
+    // A kernel keeps the paths it drew last: they are again those of the forecast that stands.
+    forecastPath(model, state, this.median, this.#isPlanned ? this.#plan : null);
   }
 
   /** Brings lower and upper to the present path. */

@@ -31,8 +31,12 @@ export interface Crossing {
   readonly probability: number;
   /** First step by which it has more likely than not been crossed; null when there is none within the horizon. */
   readonly step: number | null;
-  /** The same with the chances of the bounds' ends, 5 and 95 % at a coverage of 90 %: they hold the time as bounds do. */
+  /**
+   * Where it is crossed within the horizon, when: the quantiles of the bounds' ends and of the middle, 5, 50 and 95 % at a
+   * coverage of 90 %; null where nothing is said to cross at all.
+   */
   readonly earliest: number | null;
+  readonly likely: number | null;
   readonly latest: number | null;
 }
 
@@ -81,17 +85,18 @@ export function crossing(
   const tail = (1 - model.coverage) / 2;
   return {
     probability,
+    // The map was learned of the whole horizon: it says nothing of when, so that each step keeps its share of the chance.
     step: stepOf(crossed, probability, 0.5),
-    earliest: stepOf(crossed, probability, tail),
-    latest: stepOf(crossed, probability, 1 - tail),
+    earliest: stepOf(crossed, 1, tail),
+    likely: stepOf(crossed, 1, 0.5),
+    latest: stepOf(crossed, 1, 1 - tail),
   };
 }
 
-/** First step by which the chance of having crossed is above `share`; null: none is. */
-function stepOf(crossed: Float64Array, probability: number, share: number): number | null {
+/** First step by which `whole` times its share of all that ever crosses is above `part`; null: none. */
+function stepOf(crossed: Float64Array, whole: number, part: number): number | null {
   const H = crossed.length;
-  // The map was learned of the whole horizon: it says nothing of when, so that each step keeps its share of the chance.
-  for (let h = 0; h < H; h++) if (crossed[h] * probability > share * crossed[H - 1]) return h + 1;
+  for (let h = 0; h < H; h++) if (crossed[h] * whole > part * crossed[H - 1]) return h + 1;
   return null;
 }
 

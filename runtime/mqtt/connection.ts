@@ -197,6 +197,8 @@ class LastingConnection implements Connection {
         qos: acknowledgements.isOwed(packet) ? 1 : packet.qos,
         retain: packet.retain,
         duplicate: packet.dup,
+        responseTopic: packet.properties?.responseTopic ?? null,
+        correlationData: packet.properties?.correlationData ?? null,
       });
       acknowledgements.settle(packet, taken);
       done();

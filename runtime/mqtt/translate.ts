@@ -4,7 +4,12 @@ import type { Outgoing, Will } from './types.ts';
 interface PublishOptions {
   qos: 0 | 1;
   retain: boolean;
-  properties?: { messageExpiryInterval?: number; contentType?: string };
+  properties?: {
+    messageExpiryInterval?: number;
+    contentType?: string;
+    responseTopic?: string;
+    correlationData?: Buffer;
+  };
 }
 
 interface WillOptions {
@@ -35,9 +40,9 @@ export function asBuffer(payload: Uint8Array | string): Buffer {
   return Buffer.isBuffer(payload) ? payload : Buffer.from(payload.buffer, payload.byteOffset, payload.byteLength);
 }
 
-/** Expiry and content type exist on MQTT 5 alone. */
+/** Properties exist on MQTT 5 alone. */
 export function publishOptions(message: Outgoing, version: 4 | 5): PublishOptions {
-  const { qos, retain, expirySeconds, contentType } = message;
+  const { qos, retain, expirySeconds, contentType, responseTopic, correlationData } = message;
   if (version === 4) return { qos, retain };
   return {
     qos,
@@ -45,6 +50,8 @@ export function publishOptions(message: Outgoing, version: 4 | 5): PublishOption
     properties: {
       ...(expirySeconds === undefined ? {} : { messageExpiryInterval: Math.max(1, Math.ceil(expirySeconds)) }),
       ...(contentType === undefined ? {} : { contentType }),
+      ...(responseTopic === undefined ? {} : { responseTopic }),
+      ...(correlationData === undefined ? {} : { correlationData: asBuffer(correlationData) }),
     },
   };
 }

@@ -12,6 +12,9 @@ export interface Outgoing {
   readonly expirySeconds?: number;
   /** MQTT 5 alone. */
   readonly contentType?: string;
+  /** Where an answer is wanted, and the asker's mark on it; MQTT 5 alone. */
+  readonly responseTopic?: string;
+  readonly correlationData?: Uint8Array;
 }
 
 /** What the broker publishes for us when we vanish. */
@@ -25,6 +28,9 @@ export interface IncomingPacket {
   readonly qos: number;
   readonly retain: boolean;
   readonly duplicate: boolean;
+  /** Where the sender wants an answer, and its mark on it; null on MQTT 3.1.1, and where it says nothing. */
+  readonly responseTopic: string | null;
+  readonly correlationData: Uint8Array | null;
 }
 
 /** What the connection is doing, for logs and health. */

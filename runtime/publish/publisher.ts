@@ -12,9 +12,9 @@ import type { ShipCounts } from '../residuals/ship.ts';
 import type { Serving } from '../serving.ts';
 import { writeStatus } from '../status.ts';
 import { forecastPayload, forecastsPayload } from './forecasts.ts';
-import { healthPayload, willPayload } from './health.ts';
+import { type HealthReport, healthPayload, willPayload } from './health.ts';
 import { inputOutlooks } from './inputs.ts';
-import { validUntil } from './moment.ts';
+import { type Occasion, validUntil } from './moment.ts';
 import { outlooksOf } from './outlooks.ts';
 import { statePayload } from './state.ts';
 import { Warnings } from './warnings.ts';
@@ -68,11 +68,17 @@ export class Publisher {
     return { topic, payload, qos: 1, retain: true, contentType: JSON_TYPE, delaySeconds };
   }
 
+  /** Who publishes now, and in which circumstances. */
+  occasionOf(serving: Serving, plans: PlanKeeper, issuedAtMs: number): Occasion {
+    const { site, gateway } = this.#config;
+    const inputs = inputOutlooks(serving, plans, site, issuedAtMs);
+    return { site, gateway, issuedAtMs, isCatchingUp: this.isCatchingUp, plans, inputs };
+  }
+
   /** State and forecasts of the tick that `serving` has folded in last. */
   tick(serving: Serving, plans: PlanKeeper, lastReadingMs: Float64Array, issuedAtMs: number): void {
-    const { site, gateway, clock } = this.#config;
-    const inputs = inputOutlooks(serving, plans, site, issuedAtMs);
-    const occasion = { site, gateway, issuedAtMs, isCatchingUp: this.isCatchingUp, plans, inputs };
+    const { site, clock } = this.#config;
+    const occasion = this.occasionOf(serving, plans, issuedAtMs);
     const outlooks = site.signals.map(({ limits }, i) => outlooksOf(serving, serving.median, i, limits));
     // Also while nobody can be told: what was said before must not look different after.
     this.#warnings.tick(serving, occasion, outlooks);
@@ -111,6 +117,7 @@ export class Publisher {
     readonly lastChange: BundleChange | null;
     readonly engine: Engine;
     readonly ship: ShipCounts;
+    readonly counts: NonNullable<HealthReport['counts']>;
   }): Promise<void> {
     const now = this.#ports.clock.monotonic();
     if (now - this.#healthAt < LEAST_BETWEEN_MS && report.status !== 'stopped') {
@@ -128,7 +135,7 @@ export class Publisher {
       wallTickMs: clock === 'wall' ? site.tickMs : null,
       holdsMs: 3 * healthSeconds * 1000,
       reconnects: this.reconnects,
-      counts: { warnings_open: this.#warnings.open, warnings_opened: this.#warnings.opened },
+      counts: { warnings_open: this.#warnings.open, warnings_opened: this.#warnings.opened, ...report.counts },
     });
     writeStatus(this.#ports.disk, data, payload);
     const said = this.#send({ topic: this.#topics.health, payload, qos: 1, retain: true, contentType: JSON_TYPE });

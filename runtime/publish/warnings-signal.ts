@@ -40,7 +40,7 @@ export class SignalWarnings {
     if (found === undefined) return;
     const [limit, key, side] = found;
     const { sinceTick, seenTick, crossedTick, probability, ending, value } = kept;
-    const sight = { probability, earliest: null, step: null, latest: null, isPast: false };
+    const sight = { probability, earliest: null, likely: null, latest: null, isPast: false };
     const warning: OpenWarning = { sinceTick, seenTick, sight, crossedTick, lowSince: null, told: null };
     this.isDue = true;
     if (ending !== null) this.#end(limit, side, value, warning, ending.status, ending.reason);
@@ -59,8 +59,11 @@ export class SignalWarnings {
     for (const outlook of outlooks) {
       const { limit, key, side, value } = outlook;
       const isPast = side === 'above' ? reading > value : reading < value;
-      const { probability, earliest, step, latest } = outlook;
-      const sight = { probability, earliest, step, latest, isPast };
+      const { probability, earliest, likely, latest } = outlook;
+      // Of a limit that is passed already there is no time to come.
+      const sight = isPast
+        ? { probability, earliest: null, likely: null, latest: null, isPast }
+        : { probability, earliest, likely, latest, isPast };
       const rule = warnRuleOf(this.#site, this.#signal, key);
       this.#expireOld(limit, side, value, tick);
       const open = this.#open.get(limit);
@@ -192,7 +195,7 @@ export class SignalWarnings {
       sinceMs: this.#msOf(sinceTick),
       probability: shownProbability(sight.probability),
       earliestMs: timeOf(sight.earliest),
-      likelyMs: timeOf(sight.step),
+      likelyMs: timeOf(sight.likely),
       latestMs: timeOf(sight.latest),
       crossedMs: crossedTick === null ? null : this.#msOf(crossedTick),
       reason,

@@ -4,11 +4,11 @@
  */
 import type { WarnRule } from '@stillwell/protocol';
 
-/** What a tick says of a limit. */
+/** What a tick says of a limit: how probably it is crossed within the horizon, and in how many ticks where it is. */
 export interface Sight {
   readonly probability: number;
   readonly earliest: number | null;
-  readonly step: number | null;
+  readonly likely: number | null;
   readonly latest: number | null;
   /** Whether the reading of the tick lies past the limit. */
   readonly isPast: boolean;
@@ -90,12 +90,12 @@ export function followed(
 /** Notes what subscribers now know. */
 export function tell(warning: OpenWarning): void {
   const { seenTick: tick, sight, crossedTick } = warning;
-  const likelyTick = sight.step === null ? null : tick + sight.step;
+  const likelyTick = sight.likely === null ? null : tick + sight.likely;
   warning.told = { tick, probability: sight.probability, likelyTick, isCrossed: crossedTick !== null };
 }
 
-function isWorthTelling(told: Told, horizon: number, tick: number, { probability, step }: Sight): boolean {
+function isWorthTelling(told: Told, horizon: number, tick: number, { probability, likely }: Sight): boolean {
   if (Math.abs(probability - told.probability) >= WORTH_PROBABILITY) return true;
-  if (step === null || told.likelyTick === null) return (step === null) !== (told.likelyTick === null);
-  return Math.abs(tick + step - told.likelyTick) > Math.max(1, WORTH_TIME_SHARE * horizon);
+  if (likely === null || told.likelyTick === null) return (likely === null) !== (told.likelyTick === null);
+  return Math.abs(tick + likely - told.likelyTick) > Math.max(1, WORTH_TIME_SHARE * horizon);
 }

@@ -175,13 +175,13 @@ export class Warnings {
 }
 
 /** The tick's own reading in its unit; NaN where there was none, or none that counts. */
-function readingOf({ model, state }: Serving, signal: number): number {
+export function readingOf({ model, state }: Serving, signal: number): number {
   if (state.observed[signal] !== FOLDED) return Number.NaN;
   return model.mean[signal]! + model.scale[signal]! * state.reading[signal]!;
 }
 
 /** A signal that is not heard opens nothing, and nothing of it is known once its forecast fades to the season. */
-function trustOf(serving: Serving, signal: number): Trust {
+export function trustOf(serving: Serving, signal: number): Trust {
   const { model, state } = serving;
   if (serving.isWarming) return { kind: 'none', reason: judge(serving, false, signal, null).qualityReason! };
   const age = state.age[signal]!;

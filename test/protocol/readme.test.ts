@@ -2,6 +2,7 @@
 import { readFileSync } from 'node:fs';
 import { describe, expect, test } from 'vitest';
 import type { z } from 'zod';
+import { answerSchema } from '../../protocol/answer.ts';
 import { bundleSchema } from '../../protocol/bundle-schema.ts';
 import { HEADER_BYTES, MAX_SIGNATURES } from '../../protocol/envelope.ts';
 import { forecastSchema } from '../../protocol/forecast.ts';
@@ -10,6 +11,7 @@ import { healthSchema } from '../../protocol/health.ts';
 import { KEY_ID_BYTES, SIGNATURE_BYTES } from '../../protocol/keys.ts';
 import * as limits from '../../protocol/limits.ts';
 import { planSchema } from '../../protocol/plan.ts';
+import { questionSchema } from '../../protocol/question.ts';
 import { receiptSchema } from '../../protocol/receipt.ts';
 import { parseSite } from '../../protocol/site.ts';
 import { PAYLOAD_KEYS } from '../../protocol/site-payload.ts';
@@ -79,6 +81,8 @@ describe('tables of fields', () => {
     ['receipt', tableOf(readme, 'receipt'), receiptSchema],
     ['warning', [...head, ...tableOf(readme, 'warning')], warningSchema],
     ['plan', tableOf(readme, 'plan'), planSchema],
+    ['question', tableOf(readme, 'question'), questionSchema],
+    ['answer', [...head, ...tableOf(readme, 'answer')], answerSchema],
   ])('%s', (_, rows, schema) => expect(disagreements(rows, schema)).toEqual([]));
 
   test('limits of channels may be null, and the table says so', () => {

@@ -63,7 +63,7 @@ describe('a cycle whose phase is not known', () => {
     const { ask } = begin(withSd(1e-3), peaks);
     expect(ask(0.5).probability).toBeCloseTo(14 / 16, 9);
     expect(ask(0.5).step).toBe(19);
-    expect(ask(1.5)).toEqual({ probability: 0, step: null, earliest: null, latest: null });
+    expect(ask(1.5)).toEqual({ probability: 0, step: null, earliest: null, likely: null, latest: null });
     expect(ask(-0.05, 'below').probability).toBeCloseTo(1, 9);
     // The flat path in the middle crosses nothing: what would be said without the paths.
     const alone = { ...withSd(1e-3), switched: { ...plain.switched, forecast: Int32Array.of() } };

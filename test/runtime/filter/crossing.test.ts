@@ -68,17 +68,18 @@ describe('against simulated error chains', () => {
         // A crossing probability that hovers at one half has no sharp step.
         if (step > 0 && truth[H - 1] > 0.6) expect(Math.abs((said.step ?? H) - step)).toBeLessThanOrEqual(5);
         if (truth[H - 1] < 0.4) expect(said.step).toBeNull();
-        // By the earliest step few have crossed, by the latest most; the same method error.
-        for (const [at, share] of [
-          [said.earliest, 0.05],
-          [said.latest, 0.95],
-        ] as const) {
-          if (at === null) expect(truth[H - 1]).toBeLessThan(share + 0.075);
-          else {
-            expect(truth[at - 1]).toBeGreaterThan(share - 0.075);
-            expect(at === 1 ? 0 : truth[at - 2]).toBeLessThan(share + 0.075);
+        // Of the paths that cross at all, few have by the earliest step, half by the likely one, most by the latest. Of a
+        // chance said 0.06 off, shares of it are off by as much of it; seldom crossed, and there is nothing to hold against.
+        if (truth[H - 1] > 0.3) {
+          for (const [at, share] of [
+            [said.earliest, 0.05],
+            [said.likely, 0.5],
+            [said.latest, 0.95],
+          ] as const) {
+            expect(truth[at! - 1] / truth[H - 1]).toBeGreaterThan(share - 0.12);
+            expect(at === 1 ? 0 : truth[at! - 2] / truth[H - 1]).toBeLessThan(share + 0.12);
           }
-        }
+        } else if (truth[H - 1] === 0) expect(said.likely === null || said.probability < 0.01).toBe(true);
         // The mirror image is the same number.
         const mirrored = path.map((y) => 10 - y);
         const below = crossing(model, bounds, state, mirrored, 0, 5 - 2 * limit, 'below');
@@ -97,6 +98,7 @@ describe('ends of the scale', () => {
       probability: 0,
       step: null,
       earliest: null,
+      likely: null,
       latest: null,
     });
     const beyond = crossing(model, bounds, state, median, 0, 1, 'above');

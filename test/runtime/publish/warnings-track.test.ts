@@ -13,10 +13,10 @@ import {
 
 const RULE = { open: 0.5, close: 0.3, hold: 4 };
 const H = 60;
-const sight = (probability: number, step: number | null = null, isPast = false): Sight => ({
+const sight = (probability: number, likely: number | null = null, isPast = false): Sight => ({
   probability,
   earliest: null,
-  step,
+  likely,
   latest: null,
   isPast,
 });

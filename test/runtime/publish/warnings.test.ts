@@ -74,8 +74,10 @@ class Life {
     const outlooks = LIMITS.flatMap(([limit, key, side]): Outlook[] => {
       const value = site.signals[0]!.limits[key];
       const probability = chances[limit] ?? 0.01;
-      const step = probability > 0.5 ? 7 : null;
-      return value === null ? [] : [{ limit, key, side, value, probability, earliest: step && 3, step, latest: null }];
+      const likely = probability > 0.5 ? 7 : null;
+      return value === null
+        ? []
+        : [{ limit, key, side, value, probability, earliest: likely && 3, step: likely, likely, latest: null }];
     });
     this.warnings.tick(serving, occasion, [outlooks, []]);
     await settled();
