@@ -40,6 +40,17 @@ export { type DecodedSignal, MessageDecoder } from './message-decoder.ts';
 export { isName, NAME_RULE, toName } from './name.ts';
 export { nearestName } from './nearest.ts';
 export { type PayloadReason, refusalText } from './payload/refusal.ts';
+export {
+  decodeLayout,
+  decodePlainState,
+  encodeLayout,
+  encodePlainState,
+  type Layout,
+  type LayoutChannel,
+  layoutDigest,
+  layoutOf,
+  type PlainState,
+} from './plain-record.ts';
 export * from './plan.ts';
 export { isPointer, pointerTokens, resolvePointer } from './pointer.ts';
 export { parseQuestion, type Question, type QuestionReason, type QuestionRules } from './question.ts';

@@ -29,8 +29,10 @@ const hashOf = (tickMs: number, channels: readonly Channel[]): Uint8Array => {
 export const schemaHash = (site: Site): Uint8Array => hashOf(site.tickMs, channelsOf(site));
 
 /** The hash that a bundle's own channels give; a bundle whose `schema` differs from it contradicts itself. */
-export const bundleSchemaHash = (bundle: Pick<Bundle, 'tickMs' | 'channels'>): Uint8Array =>
-  hashOf(bundle.tickMs, bundle.channels);
+export const bundleSchemaHash = (bundle: {
+  readonly tickMs: number;
+  readonly channels: readonly Channel[];
+}): Uint8Array => hashOf(bundle.tickMs, bundle.channels);
 
 /** Names the first thing in which a bundle and a site disagree, bundle first; null when the hashes agree. */
 export const describeSchemaDifference = (bundle: Bundle, site: Site): string | null => {

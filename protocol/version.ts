@@ -2,6 +2,8 @@
 export const BUNDLE_FORMAT = 1;
 /** Number of the segment format; every number that ever shipped stays readable. */
 export const SEGMENT_FORMAT = 1;
+/** The format of segments made without a bundle, in which readings off the lattice may stand as they came. */
+export const PLAIN_SEGMENT_FORMAT = 2;
 /** Number of the filter's arithmetic: the fixed order of + - × ÷ √ that makes two machines agree to the bit. */
 export const ARITHMETIC = 1;
 /** Number carried by every JSON message as `format`. */

@@ -6,7 +6,7 @@
  * | offset | size | meaning |
  * | --- | --- | --- |
  * | 0 | 4 | magic "SWS1" |
- * | 4 | 1 | segment format, 1 |
+ * | 4 | 1 | segment format: 1, or 2 where no bundle made the forecasts |
  * | 5 | 1 | arithmetic version of the filter |
  * | 6 | 1 | flags: 1 keyed start, 2 bundle digest present, 4 corrections present, others 0 |
  * | 7 | 8 | stream id, random, new for each fresh data folder |
@@ -33,7 +33,7 @@ import { createHash } from 'node:crypto';
 import { crc32, deflateRawSync, inflateRawSync } from 'node:zlib';
 import { MAX_CHANNELS, MAX_NAME_BYTES } from '../limits.ts';
 import { isName, NAME_RULE } from '../name.ts';
-import { ARITHMETIC, SEGMENT_FORMAT } from '../version.ts';
+import { ARITHMETIC, PLAIN_SEGMENT_FORMAT, SEGMENT_FORMAT } from '../version.ts';
 import { ByteCursor, type ByteSink } from './bytes.ts';
 import {
   MAX_CORRECTIONS,
@@ -107,7 +107,7 @@ export function readSegmentParts(bytes: Uint8Array): SegmentParts {
   const end = checkFrame(bytes);
   const cursor = new ByteCursor(bytes, end);
   cursor.position = MAGIC.length;
-  const format = cursor.varint('format', SEGMENT_FORMAT, SEGMENT_FORMAT);
+  const format = cursor.varint('format', SEGMENT_FORMAT, PLAIN_SEGMENT_FORMAT);
   const arithmetic = cursor.varint('arithmetic version', 1, ARITHMETIC);
   const flags = cursor.varint('flags', 0, KEYED | HAS_BUNDLE | HAS_CORRECTIONS);
   const stream = cursor.take(8, 'stream id').slice();
@@ -161,6 +161,8 @@ export interface SegmentHeadFields {
   readonly signalCount: number;
   readonly startState: Uint8Array;
   readonly keyed: boolean;
+  /** SEGMENT_FORMAT unless said otherwise. */
+  readonly format?: typeof SEGMENT_FORMAT | typeof PLAIN_SEGMENT_FORMAT;
 }
 
 /** Writes everything before the payload. */
@@ -173,7 +175,7 @@ export function writeSegmentHead(
 ): void {
   const hasBundle = fields.bundle.some((byte) => byte !== 0);
   sink.bytes(Uint8Array.from(MAGIC));
-  sink.varint(SEGMENT_FORMAT);
+  sink.varint(fields.format ?? SEGMENT_FORMAT);
   sink.varint(ARITHMETIC);
   sink.varint(
     (fields.keyed ? KEYED : 0) | (hasBundle ? HAS_BUNDLE : 0) | (corrections.count > 0 ? HAS_CORRECTIONS : 0),

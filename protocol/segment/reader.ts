@@ -26,9 +26,14 @@ export class SegmentReader {
     this.corrections = Object.freeze(
       decodeCorrections(corrections, correctionCount, head.firstTick, head.channelCount),
     );
-    this.#model = new TickModel(head.channelCount, residualScaleSteps);
+    this.#model = new TickModel(head.channelCount, residualScaleSteps, head.format);
     this.#decoder = new BitDecoder(payload, 'payload');
     if (head.ticks === 0) this.#decoder.finish();
+  }
+
+  /** (nc) what the tick read last held off the lattice, in its own unit, NaN where nothing; null: the format has none. */
+  get raw(): Float64Array | null {
+    return this.#model.raw;
   }
 
   /**

@@ -2,10 +2,12 @@
  * One tick of all channels, in channel order: is it there, what do the others say of it, what is it. Written once for
  * both ways, as coder.ts explains.
  */
-import type { BitCoder } from './coder.ts';
+
+import { PLAIN_SEGMENT_FORMAT } from '../version.ts';
+import { type BitCoder, ONE } from './coder.ts';
 import { CrossRegression, GROUP } from './cross.ts';
 import { MAX_INDEX, segmentError } from './limits.ts';
-import { MissingModel } from './missing.ts';
+import { MISSING, MissingModel, OFF_LATTICE, PRESENT } from './missing.ts';
 import { Predictors } from './predictors.ts';
 import { codeIndex } from './value-code.ts';
 
@@ -19,27 +21,32 @@ export class TickModel {
   readonly #missing: MissingModel[] = [];
   readonly #groups: CrossRegression[] = [];
 
-  constructor(channelCount: number, residualScaleSteps: Float64Array) {
+  /** (nc) values off the lattice, where the format allows them; what `code` reads and writes beside the indices. */
+  readonly raw: Float64Array | null;
+
+  constructor(channelCount: number, residualScaleSteps: Float64Array, format: number) {
     if (residualScaleSteps.length !== channelCount)
       throw segmentError(`segment residual scales: expected ${channelCount}, got ${residualScaleSteps.length}`);
+    this.raw = format === PLAIN_SEGMENT_FORMAT ? new Float64Array(channelCount).fill(Number.NaN) : null;
     for (let c = 0; c < channelCount; c++) {
       this.#predictors.push(new Predictors(residualScaleSteps[c]!));
-      this.#missing.push(new MissingModel());
+      this.#missing.push(new MissingModel(this.raw !== null));
       if (c % GROUP === 0) this.#groups.push(new CrossRegression(Math.min(GROUP, channelCount - c)));
     }
   }
 
-  /** `out` gets the indices, NaN where missing; `lattice` counts only when `coder` writes. */
+  /** `out` gets the indices, NaN where missing or off the lattice; `lattice` and `raw` count only when `coder` writes. */
   code(coder: BitCoder, lattice: Float64Array, predicted: Float64Array, out: Float64Array): void {
     let neighbour = NO_NEIGHBOUR;
     for (const group of this.#groups) group.begin();
     for (let c = 0; c < this.#predictors.length; c++) {
       const index = lattice[c]!;
-      const missing = this.#missing[c]!.code(coder, Number.isNaN(index), neighbour);
-      neighbour = missing ? 1 : 0;
+      const what = this.#missing[c]!.code(coder, Number.isNaN(index) ? this.#offOrMissing(c) : PRESENT, neighbour);
+      neighbour = what === MISSING ? 1 : 0;
       const group = this.#groups[(c - (c % GROUP)) / GROUP]!;
       const expected = group.expected(c % GROUP);
-      if (missing) {
+      if (this.raw !== null) this.raw[c] = what === OFF_LATTICE ? codeBits(coder, this.raw[c]!) : Number.NaN;
+      if (what !== PRESENT) {
         group.observe(c % GROUP, Number.NaN, expected);
         out[c] = Number.NaN;
       } else {
@@ -47,6 +54,10 @@ export class TickModel {
       }
     }
     for (const group of this.#groups) group.end();
+  }
+
+  #offOrMissing(channel: number): number {
+    return this.raw === null || Number.isNaN(this.raw[channel]!) ? MISSING : OFF_LATTICE;
   }
 
   #codePresent(
@@ -74,4 +85,22 @@ export class TickModel {
 
 function hold(forecast: number): number {
   return forecast > MOST_FORECAST ? MOST_FORECAST : Math.max(forecast, -MOST_FORECAST);
+}
+
+const bits = new DataView(new ArrayBuffer(8));
+
+/** A float64 as its 64 bits, highest first; what a decoder is given does not matter. */
+function codeBits(coder: BitCoder, value: number): number {
+  bits.setFloat64(0, value);
+  for (let i = 0; i < 8; i++) {
+    let byte = bits.getUint8(i);
+    for (let weight = 128; weight >= 1; weight /= 2) {
+      const bit = coder.code((byte & weight) === 0 ? 0 : 1, ONE / 2);
+      byte = bit === 1 ? byte | weight : byte & ~weight;
+    }
+    bits.setUint8(i, byte);
+  }
+  const read = bits.getFloat64(0);
+  if (!Number.isFinite(read)) throw segmentError(`segment payload: expected a finite reading, got ${read}`);
+  return read;
 }

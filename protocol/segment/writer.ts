@@ -2,6 +2,8 @@
  * Closes a run of ticks into one segment. Push every tick in order, with what the filter forecast before it; late
  * readings go in by `correct`; `finish` gives the bytes. The same pushes give the same coded readings, wherever they run.
  */
+
+import { SEGMENT_FORMAT } from '../version.ts';
 import { ByteSink } from './bytes.ts';
 import { BitEncoder } from './coder.ts';
 import { type Correction, encodeCorrections } from './corrections.ts';
@@ -29,7 +31,7 @@ export class SegmentWriter {
   constructor(opening: SegmentOpening) {
     checkHeadFields(opening);
     this.#fields = { ...opening, stream: opening.stream.slice(), bundle: opening.bundle.slice() };
-    this.#model = new TickModel(opening.channelCount, opening.residualScaleSteps);
+    this.#model = new TickModel(opening.channelCount, opening.residualScaleSteps, opening.format ?? SEGMENT_FORMAT);
     this.#scratch = new Float64Array(opening.channelCount);
   }
 
@@ -51,18 +53,20 @@ export class SegmentWriter {
   /**
    * Adds one tick.
    *
-   * shapes  lattice, predicted (nc)
-   * units   lattice indices, whole, NaN where missing; predictions in lattice steps, real, NaN where there is none
+   * shapes  lattice, predicted, raw (nc)
+   * units   lattice indices, whole, NaN where missing; predictions in lattice steps, real, NaN where there is none; raw:
+   *         readings off the lattice in their own unit, where the index is NaN, NaN for none; of the plain format alone
    * throws  ProtocolError 'segment' before anything is coded
    * cost    about 1-2 µs a channel; allocates nothing but the growing output
    */
-  push(lattice: Float64Array, predicted: Float64Array): void {
+  push(lattice: Float64Array, predicted: Float64Array, raw: Float64Array | null = null): void {
     this.#checkOpen();
     const count = this.#fields.channelCount;
     if (lattice.length !== count || predicted.length !== count)
       throw segmentError(`segment tick: expected ${count} channels, got ${lattice.length} and ${predicted.length}`);
     if (this.isFull) throw segmentError(`segment is full after ${this.#ticks} ticks: close it and open the next`);
     for (let c = 0; c < count; c++) checkIndex(lattice[c]!, c);
+    if (raw !== null) this.#takeRaw(raw);
     this.#model.code(this.#encoder, lattice, predicted, this.#scratch);
     this.#ticks++;
   }
@@ -90,6 +94,15 @@ export class SegmentWriter {
     writeSegmentHead(sink, this.#fields, this.#ticks, endState, { count: this.#corrections.length, bytes });
     if (this.#ticks > 0) sink.bytes(this.#encoder.finish());
     return sealSegment(sink);
+  }
+
+  #takeRaw(raw: Float64Array): void {
+    if (this.#model.raw === null || raw.length !== this.#model.raw.length)
+      throw segmentError('segment tick: readings off the lattice need the plain format, and one place a channel');
+    const endless = raw.findIndex((value) => Math.abs(value) === Number.POSITIVE_INFINITY);
+    if (endless >= 0)
+      throw segmentError(`segment channel ${endless}: expected a finite reading or NaN, got ${raw[endless]}`);
+    this.#model.raw.set(raw);
   }
 
   #checkOpen(): void {
