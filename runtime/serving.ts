@@ -19,6 +19,7 @@ import {
   trackBounds,
   update,
 } from '@stillwell/runtime/filter';
+import type { Recorded } from './residuals/recorded.ts';
 
 /** A bundle that passed every check. */
 export interface CheckedBundle {
@@ -44,7 +45,7 @@ export interface Paths {
 }
 
 /** See the file head. Buffers are overwritten by each step. */
-export class Serving {
+export class Serving implements Recorded {
   /** Replaced when the same document comes under a higher sequence. */
   checked: CheckedBundle;
   readonly model: Model;
@@ -54,6 +55,8 @@ export class Serving {
   readonly lattice: Float64Array;
   /** (nc) the one-step forecasts made before the tick, in lattice steps. */
   readonly predicted: Float64Array;
+  /** The filter sees every reading on its lattice, and so does the record. */
+  readonly raw = null;
   /** (ny × H) in units. */
   readonly median: Float64Array;
   readonly lower: Float64Array;
@@ -85,6 +88,22 @@ export class Serving {
   /** Last tick folded in; -1 before the first. */
   get tick(): number {
     return this.state.tick;
+  }
+
+  get channelCount(): number {
+    return this.model.channelCount;
+  }
+
+  get signalCount(): number {
+    return this.model.signalCount;
+  }
+
+  get digest(): Uint8Array {
+    return this.checked.digest;
+  }
+
+  indexOf(channel: number, value: number): number {
+    return latticeIndex(value, this.model.latticeStep[channel]!, this.model.latticeOffset[channel]!);
   }
 
   get isWarming(): boolean {

@@ -8,11 +8,11 @@
  * whole boundary is tried again. A file that failed to sync is never trusted again.
  */
 import { join } from 'node:path';
-import { MAX_INDEX, MAX_SEGMENT_BYTES, SegmentWriter } from '@stillwell/protocol';
+import { MAX_INDEX, MAX_SEGMENT_BYTES, PLAIN_SEGMENT_FORMAT, SegmentWriter } from '@stillwell/protocol';
 import { type Disk, replaceOn, sweepParts } from '../disk.ts';
 import type { LateChange, OpenReadings } from '../ingest/align.ts';
-import type { Serving } from '../serving.ts';
 import { type Checkpoint, encodeCheckpoint } from './checkpoint.ts';
+import type { Recorded } from './recorded.ts';
 import type { Spool } from './spool.ts';
 import { startWal, Wal } from './wal.ts';
 
@@ -155,10 +155,10 @@ export class Journal {
   }
 
   /** Starts the first segment of this journal, with the state in full. */
-  begin(serving: Serving): void {
+  begin(recorded: Recorded): void {
     this.#sinceKeyed = 0;
-    this.#startState = serving.savedState();
-    this.#persist(serving);
+    this.#startState = recorded.savedState();
+    this.#persist(recorded);
   }
 
   /** Writes a reading down that was placed. */
@@ -171,28 +171,28 @@ export class Journal {
     this.#guard(() => this.#wal?.tick(tick, values));
   }
 
-  /** Codes the tick that `serving` has just folded in. */
-  coded(serving: Serving): void {
-    this.#writer ??= this.#openWriter(serving, serving.tick);
-    this.#writer.push(serving.lattice, serving.predicted);
+  /** Codes the tick that `recorded` has just folded in. */
+  coded(recorded: Recorded): void {
+    this.#writer ??= this.#openWriter(recorded, recorded.tick);
+    this.#writer.push(recorded.lattice, recorded.predicted, recorded.raw);
   }
 
   /** Writes a late change down and codes it. */
-  change(change: LateChange, latticeIndex: number, serving: Serving): void {
+  change(change: LateChange, latticeIndex: number, recorded: Recorded): void {
     this.#guard(() => this.#wal?.change(change));
-    this.changed(change, latticeIndex, serving);
+    this.changed(change, latticeIndex, recorded);
   }
 
   /** Codes a late change. */
-  changed(change: LateChange, latticeIndex: number, serving: Serving): void {
-    if (serving.tick < 0 || !(Math.abs(latticeIndex) <= MAX_INDEX)) return;
-    this.#writer ??= this.#openWriter(serving, serving.tick + 1);
+  changed(change: LateChange, latticeIndex: number, recorded: Recorded): void {
+    if (recorded.tick < 0 || !(Math.abs(latticeIndex) <= MAX_INDEX)) return;
+    this.#writer ??= this.#openWriter(recorded, recorded.tick + 1);
     this.#writer.correct(change.tick, change.channel, latticeIndex);
     this.#corrections++;
   }
 
   /** Closes the segment in `before`'s state and opens the next in `after`'s, the same one or another bundle's. */
-  turnOver(before: Serving, after: Serving): void {
+  turnOver(before: Recorded, after: Recorded): void {
     const hasClosed = this.#finish(before);
     if (before !== after || this.#mustKey || (hasClosed && this.#isKeyDue())) this.#sinceKeyed = 0;
     else if (hasClosed) this.#sinceKeyed++;
@@ -240,25 +240,26 @@ export class Journal {
     return Math.min(SEGMENT_BYTES, free);
   }
 
-  #openWriter(serving: Serving, firstTick: number): SegmentWriter {
+  #openWriter(recorded: Recorded, firstTick: number): SegmentWriter {
     const { site, gateway, stream } = this.#options;
     return new SegmentWriter({
       site,
       gateway,
       stream,
       number: this.#number,
-      bundle: serving.checked.digest,
+      bundle: recorded.digest,
       firstTick,
-      channelCount: serving.model.channelCount,
-      signalCount: serving.model.signalCount,
-      residualScaleSteps: serving.residualScaleSteps(),
+      channelCount: recorded.channelCount,
+      signalCount: recorded.signalCount,
+      residualScaleSteps: recorded.residualScaleSteps(),
       startState: this.#startState,
       keyed: this.#sinceKeyed === 0,
+      ...(recorded.raw === null ? {} : { format: PLAIN_SEGMENT_FORMAT }),
     });
   }
 
   /** Whether there was a segment to close. */
-  #finish(serving: Serving): boolean {
+  #finish(recorded: Recorded): boolean {
     const writer = this.#writer;
     this.#writer = null;
     this.#corrections = 0;
@@ -266,7 +267,7 @@ export class Journal {
     this.#kept.push({ number: this.#number, ticks: writer.ticks, bytes: this.#wal?.bytes ?? 0 });
     this.#counts.closed++;
     try {
-      this.#unsaved.push({ number: this.#number, bytes: writer.finish(serving.savedState()) });
+      this.#unsaved.push({ number: this.#number, bytes: writer.finish(recorded.savedState()) });
     } catch {
       // Larger than a segment may be, which closing by size prevents; the next one must then stand alone.
       this.#lose();
@@ -291,7 +292,7 @@ export class Journal {
     );
   }
 
-  #persist(serving: Serving): void {
+  #persist(recorded: Recorded): void {
     const { disk, folder, spool, stream } = this.#options;
     if (this.#fault === null) this.#guard(() => this.#wal?.sync());
     this.#closeWal();
@@ -302,9 +303,9 @@ export class Journal {
         stream,
         number: this.#number,
         sinceKeyed: this.#sinceKeyed,
-        bundle: serving.checked.digest,
+        bundle: recorded.digest,
         state: this.#startState,
-        bounds: serving.savedBounds(),
+        bounds: recorded.savedBounds(),
       };
       // Before the checkpoint that names it, so that open readings are in the old file or the new at every moment.
       this.#openWal(0);

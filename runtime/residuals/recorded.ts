@@ -1,0 +1,21 @@
+/** What a record is coded against: a bundle at work, or each channel's last value where there is none. */
+export interface Recorded {
+  /** Last tick folded in; -1 before the first. */
+  readonly tick: number;
+  readonly channelCount: number;
+  readonly signalCount: number;
+  /** Digest of the bundle document; 32 noughts without a bundle. */
+  readonly digest: Uint8Array;
+  /** (nc) the tick's readings as lattice indices, NaN missing or off the lattice. */
+  readonly lattice: Float64Array;
+  /** (nc) what was forecast of them, in lattice steps. */
+  readonly predicted: Float64Array;
+  /** (nc) readings off the lattice, NaN for none; null where all are rounded to it. */
+  readonly raw: Float64Array | null;
+  /** Lattice index of a late reading. */
+  indexOf(channel: number, value: number): number;
+  /** (nc) expected size of a residual in lattice steps, NaN where unknown. */
+  residualScaleSteps(): Float64Array;
+  savedState(): Uint8Array;
+  savedBounds(): Uint8Array;
+}
