@@ -3,9 +3,8 @@
  * bundle's filter, surprises into segments. The same readings give the same ticks, forecasts and segments, whether it ran
  * through or was stopped and started in between.
  */
-import { latticeIndex, type ReadingTarget, type Site, wrapOf } from '@stillwell/protocol';
+import { type ReadingTarget, type Site, wrapOf } from '@stillwell/protocol';
 import type { BundleKeeper } from './bundle/change.ts';
-import type { Disk } from './disk.ts';
 import { Counters } from './health.ts';
 import { Aligner, type LateChange } from './ingest/align.ts';
 import { ReadingDecoder } from './ingest/decode.ts';
@@ -13,22 +12,17 @@ import { PlanKeeper, type PlanOutcome } from './ingest/plans.ts';
 import { refusedBecause } from './ingest/quality.ts';
 import { RecentTicks } from './ingest/recent.ts';
 import { Journal, type JournalPosition } from './residuals/journal.ts';
-import { type Identity, openIdentity, type Recovered, recover, renewIdentity } from './residuals/recover.ts';
+import { PlainRecord } from './residuals/plain-record.ts';
+import type { Recorded } from './residuals/recorded.ts';
+import type { Identity, Recovered } from './residuals/recover.ts';
+import { openRecord, type RecordOptions, type RecordStart } from './residuals/resume.ts';
 import { Spool } from './residuals/spool.ts';
 import { eachReading, type WalRecord } from './residuals/wal.ts';
 import { type CheckedBundle, Serving } from './serving.ts';
 
 /** What an engine is made of. */
-export interface EngineOptions {
-  readonly site: Site;
-  readonly gateway: string;
-  readonly disk: Disk;
-  readonly folder: string;
+export interface EngineOptions extends RecordOptions {
   readonly segmentTicks: number;
-  readonly spoolBytes: number;
-  /** 8 bytes; random unless given. */
-  readonly stream?: Uint8Array;
-  readonly note: (level: 'info' | 'warn', text: string) => void;
 }
 
 /** Ticks kept to warm a new bundle with. */
@@ -58,12 +52,13 @@ export class Engine {
   };
   readonly #onChange = (change: LateChange): void => this.#correct(change, true);
   #serving: Serving | null = null;
-  #journal: Journal | null = null;
-  #position: JournalPosition = { number: 0, sinceKeyed: 0 };
+  /** What the record is coded against while no bundle serves. */
+  #plain: PlainRecord;
+  #journal: Journal;
 
   /** Opens the data folder and goes on where it stopped. throws  RuntimeError 'data-folder' */
   constructor(options: EngineOptions, keeper: BundleKeeper) {
-    const { site, disk, folder, gateway } = options;
+    const { site, disk, folder } = options;
     const channels = [...site.signals, ...site.inputs];
     this.#options = options;
     this.decoder = new ReadingDecoder(site);
@@ -73,20 +68,12 @@ export class Engine {
     const wraps = channels.map(wrapOf);
     this.aligner = new Aligner({ tickMs: site.tickMs, latenessMs: site.latenessMs, aggregates, wraps });
     this.#recent = new RecentTicks(channels.length, RECENT_TICKS);
-    let identity = openIdentity(disk, folder, site.site, gateway, options.stream);
-    let recovered = recover(disk, folder, identity.stream);
-    if (recovered === 'damaged') {
-      options.note(
-        'warn',
-        'the checkpoint is gone or damaged: a new stream of segments starts, the filter starts afresh',
-      );
-      identity = renewIdentity(disk, folder, identity);
-      recovered = null;
-    }
-    this.identity = identity;
+    const start = openRecord(options, keeper);
+    this.identity = start.identity;
     this.spool = new Spool(disk, `${folder}/spool`, options.spoolBytes, this.streamName);
-    if (recovered !== null) this.spool.discardFrom(this.streamName, recovered.checkpoint.number);
-    this.#start(keeper, recovered);
+    this.#plain = PlainRecord.of(site);
+    this.#journal = this.#openJournal(start.from?.recovered.checkpoint ?? { number: 0, sinceKeyed: 0 });
+    this.#start(keeper, start);
   }
 
   get streamName(): string {
@@ -101,8 +88,12 @@ export class Engine {
     return this.#serving;
   }
 
-  get journal(): Journal | null {
+  get journal(): Journal {
     return this.#journal;
+  }
+
+  get #recorded(): Recorded {
+    return this.#serving ?? this.#plain;
   }
 
   /** Takes one MQTT message in; `arrivalMs` stands for the time of readings without one. */
@@ -134,15 +125,14 @@ export class Engine {
     return this.aligner.close(
       nowMs,
       ({ tick, values }) => this.#fold(tick, values, true),
-      () => this.#turnIfDue(),
+      (tick) => this.#beforeTick(tick),
     );
   }
 
   /** Hands the record to the disk, and closes the open segment if it is due. Call when forecasts are out. */
   settle(retry = false): void {
     const journal = this.#journal;
-    if (journal === null || this.#serving === null) return;
-    if (retry && journal.fault !== null) journal.turnOver(this.#serving, this.#serving);
+    if (retry && journal.fault !== null) this.#turnOver();
     this.#turnIfDue();
     journal.flush();
   }
@@ -152,11 +142,7 @@ export class Engine {
     const after = this.#warmed(checked);
     after.plans = this.plans;
     after.replan();
-    if (this.#journal !== null && this.#serving !== null) this.#journal.turnOver(this.#serving, after);
-    else {
-      this.#journal = this.#openJournal();
-      this.#journal.begin(after);
-    }
+    this.#journal.turnOver(this.#recorded, after);
     this.#serving = after;
   }
 
@@ -168,16 +154,17 @@ export class Engine {
   /** Leaves everything on disk. */
   stop(): void {
     this.settle();
-    this.#journal?.stop();
+    this.#journal.stop();
   }
 
-  #start(keeper: BundleKeeper, recovered: Recovered | null): void {
-    const known = recovered === null ? null : keeper.byDigest(recovered.checkpoint.bundle);
-    if (recovered !== null) this.#position = recovered.checkpoint;
-    if (recovered !== null && known !== null && this.#resume(known, recovered)) keeper.serves(known);
+  #start(keeper: BundleKeeper, { from, left, nextTick }: RecordStart): void {
+    if (from === null) this.#begin(left, nextTick);
     else {
-      if (recovered !== null)
-        this.#options.note('warn', 'the bundle of the checkpoint is gone: the filter starts afresh');
+      this.spool.discardFrom(this.streamName, from.recovered.checkpoint.number);
+      this.#resume(from.recovered, from.recorded);
+      if (this.#serving !== null) keeper.serves(this.#serving.checked);
+    }
+    if (this.#serving === null) {
       const first = keeper.best();
       if (first === null) return;
       this.install(first);
@@ -189,40 +176,41 @@ export class Engine {
     keeper.serves(newer);
   }
 
-  #resume(checked: CheckedBundle, recovered: Recovered): boolean {
+  #begin(left: RecordStart['left'], nextTick: number | null): void {
+    if (nextTick !== null) this.aligner.startAt(nextTick);
+    for (const { channel, timeMs, value } of left) this.aligner.replay(channel, timeMs, value);
+    this.#journal.begin(this.#plain);
+  }
+
+  #resume(recovered: Recovered, recorded: Serving | PlainRecord): void {
     const { checkpoint, records, validBytes, tornBytes, kept, earlier } = recovered;
-    const serving = new Serving(checked);
-    try {
-      serving.restore(checkpoint.state, checkpoint.bounds);
-    } catch {
-      return false;
-    }
     if (tornBytes > 0) this.#options.note('warn', `journal: ${tornBytes} torn bytes cut off`);
     for (const record of earlier) {
       if (record.kind === 'tick') this.#recent.push(record.tick, record.values);
       this.#align(record);
     }
-    if (serving.tick >= 0 && this.aligner.nextTick !== serving.tick + 1) this.aligner.startAt(serving.tick + 1);
-    serving.plans = this.plans;
-    this.#serving = serving;
-    this.#journal = this.#openJournal();
+    if (recorded.tick >= 0 && this.aligner.nextTick !== recorded.tick + 1) this.aligner.startAt(recorded.tick + 1);
+    if (recorded instanceof Serving) {
+      recorded.plans = this.plans;
+      this.#serving = recorded;
+    } else this.#plain = recorded;
     this.#journal.resume(checkpoint.state, validBytes, kept);
     for (const record of records) this.#replay(record, checkpoint.number);
+    if (this.#serving === null) this.#changePlain(this.#plain.declared(this.site));
     this.counters.ticks = 0;
     this.counters.corrections = 0;
-    return true;
   }
 
   /** Takes one frame in again of the journal file that the checkpoint names. */
   #replay(record: WalRecord, from: number): void {
-    if (record.kind === 'tick') this.#turnIfDue();
+    if (record.kind === 'tick') this.#beforeTick(record.tick);
     this.#align(record);
     // Where a shorter segment length closed the segment on the way, the rest belongs into the next journal file.
-    const isNew = this.#journal!.number !== from;
+    const isNew = this.#journal.number !== from;
     if (record.kind === 'tick') this.#fold(record.tick, record.values, isNew);
     else if (record.kind === 'change') this.#correct(record, isNew);
     else if (record.kind === 'readings' && isNew)
-      eachReading(record, (channel, timeMs, value) => this.#journal?.reading(channel, timeMs, value));
+      eachReading(record, (channel, timeMs, value) => this.#journal.reading(channel, timeMs, value));
   }
 
   /** What the aligner knew when a frame of the journal was written. */
@@ -233,7 +221,7 @@ export class Engine {
       eachReading(record, (channel, timeMs, value) => this.aligner.replay(channel, timeMs, value));
   }
 
-  #openJournal(): Journal {
+  #openJournal(position: JournalPosition): Journal {
     const { disk, folder, gateway, site, segmentTicks } = this.#options;
     const { spool } = this;
     const channelCount = this.#ranges.length;
@@ -252,7 +240,7 @@ export class Engine {
         channelCount,
         openReadings: () => this.aligner.openReadings(),
       },
-      this.#position,
+      position,
     );
   }
 
@@ -280,37 +268,56 @@ export class Engine {
     else {
       this.counters.readings++;
       if (placed !== 'taken') this.counters.late++;
-      this.#journal?.reading(channel, timeMs, value);
+      this.#journal.reading(channel, timeMs, value);
     }
   }
 
   /** At a tick boundary, when the aligner knows of the tick ahead only as open. */
   #turnIfDue(): void {
-    if (this.#serving !== null && this.#journal?.isDue) this.#journal.turnOver(this.#serving, this.#serving);
+    if (this.#journal.isDue || (this.#serving === null && this.#plain.isRefinable)) this.#turnOver();
+  }
+
+  #turnOver(): void {
+    if (this.#serving === null) this.#turnPlain(this.#plain.refined());
+    else this.#journal.turnOver(this.#serving, this.#serving);
+  }
+
+  /** The same, and what the first tick of a segment says of the steps of sensors. */
+  #beforeTick(tick: number): void {
+    this.#turnIfDue();
+    if (this.#serving === null && this.#journal.ticks === 0)
+      this.#changePlain(this.#plain.begun((channel) => this.aligner.readingsOf(tick, channel)));
+  }
+
+  #changePlain(after: PlainRecord): void {
+    if (after !== this.#plain) this.#turnPlain(after);
+  }
+
+  #turnPlain(after: PlainRecord): void {
+    this.#journal.turnOver(this.#plain, after);
+    this.#plain = after;
+    after.beginSegment();
   }
 
   /** toDisk  false for what the open journal file holds already */
   #fold(tick: number, values: Float64Array, toDisk: boolean): void {
-    const serving = this.#serving;
-    const journal = this.#journal;
     this.#recent.push(tick, values);
     this.plans.came(tick, values);
     this.counters.ticks++;
-    if (serving === null || journal === null) return;
-    if (toDisk) journal.tick(tick, values);
-    serving.step(tick, values);
-    journal.coded(serving);
+    if (toDisk) this.#journal.tick(tick, values);
+    if (this.#serving !== null) this.#serving.step(tick, values);
+    else this.#plain.step(tick, values, (channel) => this.aligner.readingsOf(tick, channel));
+    this.#journal.coded(this.#recorded);
   }
 
   #correct(change: LateChange, toDisk: boolean): void {
-    const serving = this.#serving;
-    const journal = this.#journal;
+    const { tick, channel, value } = change;
     this.counters.corrections++;
-    if (serving === null || journal === null) return;
-    const { latticeStep, latticeOffset } = serving.model;
-    const index = latticeIndex(change.value, latticeStep[change.channel]!, latticeOffset[change.channel]!);
-    if (toDisk) journal.change(change, index, serving);
-    else journal.changed(change, index, serving);
+    if (this.#serving === null)
+      this.#changePlain(this.#plain.reaching(channel, this.aligner.readingsOf(tick, channel) ?? [value]));
+    const index = this.#recorded.indexOf(channel, value);
+    if (toDisk) this.#journal.change(change, index, this.#recorded);
+    else this.#journal.changed(change, index, this.#recorded);
   }
 
   /** Past an outage too long to bridge tick by tick: go on just before now, with a filter that starts afresh. */
@@ -323,7 +330,10 @@ export class Engine {
       this.counters.skippedTicks += due - 1;
       this.#options.note('warn', `outage of ${due} ticks: too long to bridge, the filter starts afresh`);
     }
-    if (this.#serving === null || this.#journal === null) return;
+    if (this.#serving === null) {
+      this.#turnPlain(this.#plain.afresh());
+      return;
+    }
     const after = new Serving(this.#serving.checked);
     after.plans = this.plans;
     this.#journal.turnOver(this.#serving, after);

@@ -84,7 +84,7 @@ export class Gateway {
       onChange: () => this.#onBundleChange(),
     });
     this.#holdUntil = clock.monotonic() + SETTLE_AT_MOST_MS;
-    this.#groupSync = new GroupSync({ clock, sync: async () => this.engine.journal?.syncSoon() });
+    this.#groupSync = new GroupSync({ clock, sync: async () => this.engine.journal.syncSoon() });
     this.#connection = this.#connect();
     this.#publisher = new Publisher(config, ports, this.#connection, this.#topics);
     this.#questions = new Questions({
@@ -208,7 +208,7 @@ export class Gateway {
     } catch (error) {
       this.#ports.log.error(`message on ${topic} not handled: ${(error as Error).message}`);
     }
-    if (packet.qos > 0 && this.engine.journal?.isDurable === false) return this.#groupSync.wait();
+    if (packet.qos > 0 && !this.engine.journal.isDurable) return this.#groupSync.wait();
   }
 
   #reading(topic: string, payload: Uint8Array): void {
@@ -244,7 +244,7 @@ export class Gateway {
     const { clock } = this.#ports;
     this.#closeTicks();
     const now = clock.monotonic();
-    if (this.engine.journal?.isDirty && this.#groupSync.ageMs >= SYNC_MS) this.#groupSync.now();
+    if (this.engine.journal.isDirty && this.#groupSync.ageMs >= SYNC_MS) this.#groupSync.now();
     if (now - this.#lookedAt >= LOOK_MS) {
       this.#lookedAt = now;
       this.#intake.takeIncoming();
@@ -314,7 +314,7 @@ export class Gateway {
   #tend(isRetry: boolean): void {
     this.engine.settle(isRetry);
     this.#release();
-    const fault = this.engine.journal?.fault ?? null;
+    const { fault } = this.engine.journal;
     if (fault === this.#saidFault) return;
     this.#saidFault = fault;
     if (fault === null) this.#ports.log.info('the disk takes data again');
@@ -323,7 +323,7 @@ export class Gateway {
 
   #release(): void {
     const { journal, streamName } = this.engine;
-    if (journal !== null && journal.fault === null) this.#shipper.release(streamName, journal.number);
+    if (journal.fault === null) this.#shipper.release(streamName, journal.number);
   }
 
   #setStatus(): void {

@@ -104,6 +104,11 @@ export class Aligner {
     return this.#newestMs;
   }
 
+  /** Readings of a channel in a tick that is open or remembered; undefined where none are known. */
+  readingsOf(tick: number, channel: number): readonly number[] | undefined {
+    return this.#ticks.get(tick)?.[channel]?.values;
+  }
+
   /** Ticks before `tick` are closed, whatever came for them. */
   startAt(tick: number): void {
     this.#nextTick = tick;
@@ -152,11 +157,11 @@ export class Aligner {
    * onTick  called for each tick
    * before  called for each, while it is still open
    */
-  close(nowMs: number | null, onTick: (closed: ClosedTick) => void, before: () => void = () => {}): number {
+  close(nowMs: number | null, onTick: (closed: ClosedTick) => void, before: (tick: number) => void = () => {}): number {
     const first = this.#nextTick ?? this.#firstTick();
     const end = first + this.#ticksDone(nowMs, first);
     for (let tick = first; tick < end; tick++) {
-      before();
+      before(tick);
       this.#shut(tick);
       onTick({ tick, values: this.#values });
     }

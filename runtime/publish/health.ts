@@ -94,16 +94,16 @@ export function healthPayload(report: HealthReport): Uint8Array {
       duplicates: counters.duplicates,
       ticks: counters.ticks,
       ticks_skipped: counters.skippedTicks,
-      segments_open: journal !== null && journal.ticks > 0 ? 1 : 0,
+      segments_open: journal.ticks > 0 ? 1 : 0,
       segments_waiting: spool.waiting.length,
       segments_confirmed: ship.confirmed,
-      segments_closed: journal?.counts.closed ?? 0,
+      segments_closed: journal.counts.closed,
       segments_sent: ship.sent,
       segments_resent: ship.resent,
       segments_parked: ship.parked,
       segments_in_conflict: ship.conflicts,
-      segments_shed: journal?.counts.shedSegments ?? 0,
-      segments_lost: (journal?.counts.lost ?? 0) + spool.damaged,
+      segments_shed: journal.counts.shedSegments,
+      segments_lost: journal.counts.lost + spool.damaged,
       ...planCounts(engine),
       ...sparkplugCounts(engine),
       spool_bytes: spool.bytes,
@@ -129,8 +129,12 @@ function judgeGateway(report: HealthReport): Judged {
   const { engine, status } = report;
   const { serving, journal } = engine;
   if (status === 'stopped') return { quality: 'F', qualityReason: 'stopped' };
-  if (serving === null) return { quality: 'F', qualityReason: 'no bundle serves' };
-  const fault = journal?.fault ?? null;
+  const { fault } = journal;
+  if (serving === null)
+    return {
+      quality: 'F',
+      qualityReason: `no bundle serves yet: ${fault === null ? 'recording' : `nothing is being kept on disk: ${fault}`}`,
+    };
   if (fault !== null) return { quality: 'M', qualityReason: `nothing is being kept on disk: ${fault}` };
   const outlooks = inputOutlooks(serving, engine.plans, engine.site, report.nowMs);
   return judgeClock(report) ?? judge(serving, false, null, planFault(serving, engine.plans, outlooks, null));

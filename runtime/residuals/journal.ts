@@ -149,9 +149,14 @@ export class Journal {
    * keepBytes  of the journal file, as far as it checks; 0: it is gone
    */
   resume(startState: Uint8Array, keepBytes: number, kept: readonly KeptJournal[]): void {
-    this.#startState = startState;
+    this.startFrom(startState);
     this.#kept.push(...kept);
     this.#guard(() => this.#openWal(keepBytes));
+  }
+
+  /** The same without a file: for what is replayed and closed at once. */
+  startFrom(startState: Uint8Array): void {
+    this.#startState = startState;
   }
 
   /** Starts the first segment of this journal, with the state in full. */

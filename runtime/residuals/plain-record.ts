@@ -70,8 +70,12 @@ export class PlainRecord implements Recorded {
   /** The record that a saved state belongs to. throws  ProtocolError where the bytes are none */
   static restored(state: Uint8Array, site: Site): PlainRecord {
     const saved = decodePlainState(state);
-    const isSame = isLayoutOf(saved.layout, site);
-    return new PlainRecord(saved, isSame ? declaredOf(site) : saved.layout.channels.map(() => true));
+    const resolutions = channelsOf(site).map(({ resolution }) => resolution);
+    // Under a step that was not declared as it is now, readings are kept as they came until `declared`.
+    return new PlainRecord(
+      saved,
+      saved.layout.channels.map(({ lattice }, c) => resolutions[c] === lattice.step),
+    );
   }
 
   get channelCount(): number {
@@ -80,6 +84,12 @@ export class PlainRecord implements Recorded {
 
   get digest(): Uint8Array {
     return NO_BUNDLE;
+  }
+
+  /** Forgets what the segment before showed of finer steps. */
+  beginSegment(): void {
+    this.#finer.fill(0);
+    this.#isRefinable = false;
   }
 
   /** Takes one tick in. `values` (nc) in units; `readings` what they were made of, which says whether they are exact. */
@@ -122,18 +132,29 @@ export class PlainRecord implements Recorded {
     });
   }
 
-  /** The same record with the step that a late reading needs; itself where it lies on its lattice, or on none. */
-  reaching(channel: number, value: number): PlainRecord {
-    const { step } = this.layout.channels[channel]!.lattice;
-    if (this.#isOpen[channel] === 0 || isOnStep(value, step)) return this;
-    const decimals = decimalsOf(value);
-    return this.#withSteps((c) => (c === channel && decimals >= 0 ? Math.min(step, STEPS[decimals]!) : this.#step(c)));
+  /** The same record with the step that the readings of a late change need; itself where they lie on the lattice, or on none. */
+  reaching(channel: number, readings: readonly number[]): PlainRecord {
+    const step = this.#step(channel);
+    if (this.#isOpen[channel] === 0 || readings.every((reading) => isOnStep(reading, step))) return this;
+    const finest = Math.min(step, ...readings.map((reading) => STEPS[decimalsOf(reading)] ?? step));
+    return this.#withSteps((c) => (c === channel ? finest : this.#step(c)));
+  }
+
+  /** The same record behind an outage: nothing is remembered but the steps. */
+  afresh(): PlainRecord {
+    const last = new Float64Array(this.channelCount).fill(Number.NaN);
+    return new PlainRecord(
+      { layout: this.layout, tick: -1, last },
+      [...this.#isOpen].map((isOpen) => isOpen === 0),
+    );
   }
 
   /** The same record with the steps that the site file declares by now; itself where it has them. */
   declared(site: Site): PlainRecord {
-    const resolutions = channelsOf(site).map(({ resolution }) => resolution);
-    return this.#withSteps((c) => resolutions[c] ?? this.#step(c));
+    const channels = channelsOf(site);
+    const changed = this.#withSteps((c) => channels[c]!.resolution ?? this.#step(c));
+    if (changed === this) return this;
+    return new PlainRecord({ layout: changed.layout, tick: changed.tick, last: changed.#last }, declaredOf(site));
   }
 
   /** Nothing is known of the size of a residual. */
