@@ -3,11 +3,17 @@
  * readings merged in. The result depends on which segments are kept, never on the order they came in.
  */
 import { inflateRawSync } from 'node:zlib';
-import { type Bundle, latticeValue } from '@stillwell/protocol';
+import { latticeIndex, latticeValue } from '@stillwell/protocol';
 import { sql } from 'kysely';
 import { TrainError } from '../errors.ts';
-import { Shelf } from './shelf.ts';
+import type { Lattice } from '../history/resolution.ts';
+import { type KnownLayout, Layouts } from './layouts.ts';
 import { openArchive, type Store, toBytes } from './store/open.ts';
+
+/** Half a unit in the last place of a 32-bit float, relative: such a reading stands for decimals. */
+const SINGLE_TOLERANCE = 2 ** -24;
+/** Wild readings do not show that a lattice is another one. */
+const MOST_STRAYS = 0.01;
 
 /** One signal or input of an archive. */
 export interface ArchivedChannel {
@@ -18,12 +24,14 @@ export interface ArchivedChannel {
   readonly values: Float64Array;
   /** As the filter saw them when the tick closed; NaN missing. */
   readonly original: Float64Array;
-  readonly lattice: { readonly step: number; readonly offset: number };
+  /** Null where no bundle said it and the readings do not lie on what the gateway found: then it is to be found in them. */
+  readonly lattice: { readonly step: number; readonly offset: number } | null;
 }
 
 /**
  * shapes  ticks (n), ascending, absolute since 1970; values and original (n) each
- * units   as the bundle of the last segment says; channels in its order, then channels that only older bundles had
+ * units   as the last segment's bundle says, or that segment itself; channels in its order, then those that only older
+ *         segments had
  */
 export interface Archive {
   readonly site: string;
@@ -78,21 +86,23 @@ export async function readSite(store: Store, site: string, sinceTick = Number.MI
     .orderBy('segments.number')
     .orderBy('corrections.entry')
     .execute();
-  const bundles = await bundlesOf(store, spans);
-  const last = bundles.get(spans[spans.length - 1]!.bundle)!;
-  const usable = <T extends { bundle: string }>(row: T): boolean => bundles.get(row.bundle)?.tickMs === last.tickMs;
-  const grid = new Grid(last, bundles);
+  const layouts = await layoutsOf(store, spans);
+  const last = layouts.get(spans[spans.length - 1]!.bundle)!;
+  const { tickMs } = last.layout;
+  const usable = <T extends { bundle: string }>(row: T): boolean => layouts.get(row.bundle)?.layout.tickMs === tickMs;
+  const grid = new Grid(last, layouts);
   const kept = spans.filter(usable);
   for (const span of kept) grid.cover(span.first_tick, span.ticks);
   const lateKept = late.filter(usable);
   for (const one of lateKept) grid.cover(one.tick, 1);
   grid.open();
-  for (const span of kept) grid.lay(span.bundle, span.first_tick, span.channels, unpackLattice(toBytes(span.lattice)));
+  for (const span of kept) grid.lay(span, unpackNumbers(toBytes(span.lattice)));
   grid.keepOriginal();
   let corrections = 0;
   for (const one of lateKept) if (grid.correct(one.bundle, one.tick, one.channel, one.lattice)) corrections++;
   const made = grid.finish();
-  return { site, tickMs: last.tickMs, ...made, segments: kept.length, corrections, bundles: [...bundles.keys()] };
+  const bundles = [...layouts].filter(([, { isOfBundle }]) => isOfBundle).map(([digest]) => digest);
+  return { site, tickMs, ...made, segments: kept.length, corrections, bundles };
 }
 
 async function nothingOf(store: Store, site: string, sinceTick: number): Promise<TrainError> {
@@ -117,15 +127,15 @@ async function nothingOf(store: Store, site: string, sinceTick: number): Promise
   );
 }
 
-async function bundlesOf(store: Store, spans: readonly { bundle: string }[]): Promise<Map<string, Bundle>> {
-  const shelf = new Shelf(store, null);
-  const bundles = new Map<string, Bundle>();
+async function layoutsOf(store: Store, spans: readonly { bundle: string }[]): Promise<Map<string, KnownLayout>> {
+  const known = new Layouts(store);
+  const layouts = new Map<string, KnownLayout>();
   for (const { bundle } of spans) {
-    if (bundles.has(bundle)) continue;
-    const shelved = await shelf.find(bundle);
-    if (shelved) bundles.set(bundle, shelved.bundle);
+    if (layouts.has(bundle)) continue;
+    const found = await known.find(bundle);
+    if (found) layouts.set(bundle, found);
   }
-  return bundles;
+  return layouts;
 }
 
 /** Ticks first <= n < end, the first of them in row `at`. */
@@ -137,22 +147,26 @@ interface Run {
 
 /** Columns by channel name over the union of all covered ticks. */
 class Grid {
-  readonly #bundles: ReadonlyMap<string, Bundle>;
-  readonly #channels: { name: string; role: 'signal' | 'input'; unit: string; lattice: ArchivedChannel['lattice'] }[];
+  readonly #layouts: ReadonlyMap<string, KnownLayout>;
+  readonly #channels: { name: string; role: 'signal' | 'input'; unit: string; lattice: Lattice }[];
   readonly #columnOf = new Map<string, number>();
+  /** Channels whose lattice no bundle says. */
+  readonly #unsure = new Set<string>();
   #runs: Run[] = [];
   #ticks = new Float64Array(0);
   #values: Float64Array[] = [];
   #original: Float64Array[] = [];
 
-  constructor(last: Bundle, bundles: ReadonlyMap<string, Bundle>) {
-    this.#bundles = bundles;
+  constructor(last: KnownLayout, layouts: ReadonlyMap<string, KnownLayout>) {
+    this.#layouts = layouts;
     this.#channels = [];
-    for (const bundle of [last, ...bundles.values()]) {
-      for (const { name, role, unit, lattice } of bundle.channels) {
+    // The newest first: without a bundle it has the step that a gateway knew last.
+    for (const { layout, isOfBundle } of [last, ...[...layouts.values()].reverse()]) {
+      for (const { name, role, unit, lattice } of layout.channels) {
         if (this.#columnOf.has(name)) continue;
         this.#columnOf.set(name, this.#channels.length);
         this.#channels.push({ name, role, unit, lattice });
+        if (!isOfBundle) this.#unsure.add(name);
       }
     }
   }
@@ -182,18 +196,23 @@ class Grid {
     this.#values = this.#channels.map(() => new Float64Array(length).fill(Number.NaN));
   }
 
-  lay(digest: string, first: number, count: number, lattice: Float64Array): void {
-    const { channels } = this.#bundles.get(digest)!;
-    const ticks = lattice.length / count;
-    const at = ticks > 0 ? this.#place(first) : 0;
+  /** numbers  (ticks × channels) lattice indices, then pairs of place and reading for what lay off the lattice */
+  lay(span: { bundle: string; first_tick: number; ticks: number; channels: number }, numbers: Float64Array): void {
+    const { channels } = this.#layouts.get(span.bundle)!.layout;
+    const { ticks, channels: count } = span;
+    const at = ticks > 0 ? this.#place(span.first_tick) : 0;
     for (let c = 0; c < count; c++) {
-      const { name, lattice: steps } = channels[c]!;
-      const column = this.#values[this.#columnOf.get(name)!]!;
+      const { step, offset } = channels[c]!.lattice;
+      const column = this.#columnFor(channels[c]!);
       for (let i = 0; i < ticks; i++) {
-        const index = lattice[i * count + c]!;
+        const index = numbers[i * count + c]!;
         // Where two streams cover a tick, a reading beats a gap.
-        if (!Number.isNaN(index)) column[at + i] = latticeValue(index, steps.step, steps.offset);
+        if (!Number.isNaN(index)) column[at + i] = latticeValue(index, step, offset);
       }
+    }
+    for (let i = ticks * count; i < numbers.length; i += 2) {
+      const place = numbers[i]!;
+      this.#columnFor(channels[place % count]!)[at + Math.floor(place / count)] = numbers[i + 1]!;
     }
   }
 
@@ -202,10 +221,10 @@ class Grid {
   }
 
   correct(digest: string, tick: number, channel: number, index: number): boolean {
-    const { name, lattice } = this.#bundles.get(digest)!.channels[channel]!;
-    const column = this.#values[this.#columnOf.get(name)!]!;
+    const one = this.#layouts.get(digest)!.layout.channels[channel]!;
+    const column = this.#columnFor(one);
     const at = this.#place(tick);
-    const value = latticeValue(index, lattice.step, lattice.offset);
+    const value = latticeValue(index, one.lattice.step, one.lattice.offset);
     if (column[at] === value) return false;
     column[at] = value;
     return true;
@@ -214,10 +233,15 @@ class Grid {
   finish(): { ticks: Float64Array; channels: ArchivedChannel[] } {
     const channels = this.#channels.map((channel, i) => ({
       ...channel,
+      lattice: this.#unsure.has(channel.name) ? heldLattice(this.#values[i]!, channel.lattice) : channel.lattice,
       values: this.#values[i]!,
       original: this.#original[i]!,
     }));
     return { ticks: this.#ticks, channels };
+  }
+
+  #columnFor({ name }: { readonly name: string }): Float64Array {
+    return this.#values[this.#columnOf.get(name)!]!;
   }
 
   #place(tick: number): number {
@@ -233,13 +257,26 @@ class Grid {
   }
 }
 
-/** Most bytes one span can unfold to: the most values of a segment, 8 bytes each. */
-const MAX_SPAN_BYTES = 8 * (1 << 21);
+/** A lattice that nearly all values lie on, strays aside; null where it is not theirs. */
+function heldLattice(values: Float64Array, lattice: Lattice): Lattice | null {
+  let present = 0;
+  let off = 0;
+  for (const value of values) {
+    if (Number.isNaN(value)) continue;
+    present++;
+    const near = latticeValue(latticeIndex(value, lattice.step, lattice.offset), lattice.step, lattice.offset);
+    if (Math.abs(near - value) > Math.abs(value) * SINGLE_TOLERANCE) off++;
+  }
+  return off > MOST_STRAYS * present ? null : lattice;
+}
 
-function unpackLattice(deflated: Uint8Array): Float64Array {
+/** Most bytes one span can unfold to: the most values of a segment and a pair for each, 8 bytes a number. */
+const MAX_SPAN_BYTES = 3 * 8 * (1 << 21);
+
+function unpackNumbers(deflated: Uint8Array): Float64Array {
   const bytes = inflateRawSync(deflated, { maxOutputLength: MAX_SPAN_BYTES });
   const view = new DataView(bytes.buffer, bytes.byteOffset, bytes.byteLength);
-  const lattice = new Float64Array(bytes.length / 8);
-  for (let i = 0; i < lattice.length; i++) lattice[i] = view.getFloat64(i * 8, true);
-  return lattice;
+  const numbers = new Float64Array(bytes.length / 8);
+  for (let i = 0; i < numbers.length; i++) numbers[i] = view.getFloat64(i * 8, true);
+  return numbers;
 }

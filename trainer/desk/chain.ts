@@ -4,9 +4,14 @@
  * recorded with its reason and ends at the next keyed segment.
  */
 import { deflateRawSync } from 'node:zlib';
+import type { Correction } from '@stillwell/protocol';
+import type { Kysely } from 'kysely';
+import { keepLayout } from './layouts.ts';
 import { type Replay, replaySegment } from './replay.ts';
-import type { Shelf, ShelvedBundle } from './shelf.ts';
+import { isWithoutBundle, type PlainReplay, replayPlain } from './replay-plain.ts';
+import type { Shelf } from './shelf.ts';
 import { type Store, toBytes } from './store/open.ts';
+import type { Tables } from './store/schema.ts';
 
 /** What happened to a segment beyond its arrival. */
 export interface ChainEvent {
@@ -31,6 +36,20 @@ export interface StreamPlace {
 }
 
 type Row = Awaited<ReturnType<Chain['find']>>;
+
+/** What is kept of a decoded segment, however it was made. */
+interface Decoded {
+  /** Digest of what says what its columns hold, which is kept by then. */
+  readonly name: (db: Kysely<Tables>) => Promise<string>;
+  readonly firstTick: number;
+  readonly ticks: number;
+  readonly channels: number;
+  readonly numbers: Float64Array;
+  readonly corrections: readonly Correction[];
+  readonly readings: number;
+  readonly endState: Uint8Array;
+  readonly residuals: (segment: number) => ReturnType<typeof residualRows>;
+}
 
 /** The decoding side of one store. */
 export class Chain {
@@ -105,8 +124,8 @@ export class Chain {
   }
 
   async #attempt(row: NonNullable<Row>): Promise<ChainEvent> {
-    const shelved = await this.#shelf.find(row.bundle);
-    if (shelved === null) return this.#wait(row, 'bundle');
+    const shelved = isWithoutBundle(row.bundle) ? null : await this.#shelf.find(row.bundle);
+    if (shelved === null && !isWithoutBundle(row.bundle)) return this.#wait(row, 'bundle');
     let before: NonNullable<Row> | undefined;
     if (row.keyed === 0) {
       before = await this.find({ ...row, number: row.number - 1 });
@@ -114,14 +133,19 @@ export class Chain {
       const broken = breakBefore(row, before);
       if (broken !== null) return this.#break(row, broken);
     }
-    let replay: Replay;
+    let decoded: Decoded;
     try {
-      replay = replaySegment(toBytes(row.bytes), shelved.model, before?.end_state ? toBytes(before.end_state) : null);
+      const start = before?.end_state ? toBytes(before.end_state) : null;
+      const bytes = toBytes(row.bytes);
+      decoded =
+        shelved === null
+          ? fromPlain(replayPlain(bytes, start), row.site)
+          : fromBundle(replaySegment(bytes, shelved.model, start), shelved.digest);
     } catch (error) {
       return this.#break(row, (error as Error).message);
     }
-    await this.#commit(row, shelved, replay);
-    return { ...said(row), kind: 'decoded', readings: replay.readings, reason: null };
+    await this.#commit(row, decoded);
+    return { ...said(row), kind: 'decoded', readings: decoded.readings, reason: null };
   }
 
   async #wait(row: NonNullable<Row>, reason: string): Promise<ChainEvent> {
@@ -136,27 +160,25 @@ export class Chain {
     return { ...said(row), kind: 'broken', readings: null, reason };
   }
 
-  async #commit(row: NonNullable<Row>, shelved: ShelvedBundle, replay: Replay): Promise<void> {
-    const { head } = replay;
-    const common = { segment: row.id, site: row.site, bundle: shelved.digest };
-    const corrections = replay.corrections.map(({ tick, channel, index }, entry) => ({
-      ...common,
-      entry,
-      tick,
-      channel,
-      lattice: index,
-    }));
+  async #commit(row: NonNullable<Row>, decoded: Decoded): Promise<void> {
     await this.#store.db.transaction().execute(async (db) => {
+      const common = { segment: row.id, site: row.site, bundle: await decoded.name(db) };
+      const corrections = decoded.corrections.map(({ tick, channel, index }, entry) => ({
+        ...common,
+        entry,
+        tick,
+        channel,
+        lattice: index,
+      }));
       await db
         .updateTable('segments')
-        .set({ state: 'decoded', reason: null, readings: replay.readings, end_state: replay.endState })
+        .set({ state: 'decoded', reason: null, readings: decoded.readings, end_state: decoded.endState })
         .where('id', '=', row.id)
         .execute();
-      const lattice = packLattice(replay.lattice);
-      const { firstTick: first_tick, ticks, channelCount: channels } = head;
+      const { firstTick: first_tick, ticks, channels } = decoded;
       await db
         .insertInto('spans')
-        .values({ ...common, first_tick, ticks, channels, lattice })
+        .values({ ...common, first_tick, ticks, channels, lattice: packNumbers(decoded.numbers) })
         .execute();
       for (let at = 0; at < corrections.length; at += 500) {
         await db
@@ -164,7 +186,8 @@ export class Chain {
           .values(corrections.slice(at, at + 500))
           .execute();
       }
-      await db.insertInto('residuals').values(residualRows(row.id, replay)).execute();
+      const residuals = decoded.residuals(row.id);
+      if (residuals.length > 0) await db.insertInto('residuals').values(residuals).execute();
       // The state before this segment is needed no more.
       await db
         .updateTable('segments')
@@ -195,11 +218,25 @@ function residualRows(segment: number, replay: Replay) {
   }));
 }
 
+function fromBundle(replay: Replay, digest: string): Decoded {
+  const { firstTick, ticks, channelCount: channels } = replay.head;
+  const residuals = (segment: number): ReturnType<typeof residualRows> => residualRows(segment, replay);
+  return { ...replay, name: async () => digest, firstTick, ticks, channels, numbers: replay.lattice, residuals };
+}
+
+function fromPlain(replay: PlainReplay, site: string): Decoded {
+  const numbers = new Float64Array(replay.lattice.length + replay.off.length);
+  numbers.set(replay.lattice);
+  numbers.set(replay.off, replay.lattice.length);
+  const channels = replay.layout.channels.length;
+  return { ...replay, name: (db) => keepLayout(db, site, replay.layout), channels, numbers, residuals: () => [] };
+}
+
 /** Deflated float64 little-endian. */
-function packLattice(lattice: Float64Array): Uint8Array {
-  const bytes = new Uint8Array(lattice.length * 8);
+function packNumbers(numbers: Float64Array): Uint8Array {
+  const bytes = new Uint8Array(numbers.length * 8);
   const view = new DataView(bytes.buffer);
-  for (let i = 0; i < lattice.length; i++) view.setFloat64(i * 8, lattice[i]!, true);
+  for (let i = 0; i < numbers.length; i++) view.setFloat64(i * 8, numbers[i]!, true);
   return deflateRawSync(bytes, { level: 6 });
 }
 

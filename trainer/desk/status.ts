@@ -2,7 +2,7 @@
  * What a desk holds, site by site: counts, span, cost per reading, and how the one-step residuals stand against what the
  * bundle expected. Reads the store only; a desk may be collecting into it meanwhile.
  */
-import { Shelf } from './shelf.ts';
+import { Layouts } from './layouts.ts';
 import type { Store } from './store/open.ts';
 
 /** Residuals of one signal; bias and spread as shares of the bundle's expected spread: 0 and 1 are as expected. */
@@ -52,7 +52,7 @@ export async function readStatus(store: Store): Promise<SiteStatus[]> {
   const counts = await countSites(store);
   const refusals = await store.db.selectFrom('refusals').selectAll().orderBy('last_ms').execute();
   const names = new Set([...counts.map((row) => row.site), ...refusals.map((row) => row.site)]);
-  const shelf = new Shelf(store, null);
+  const layouts = new Layouts(store);
   const statuses: SiteStatus[] = [];
   for (const site of [...names].sort()) {
     const refused = refusals.filter((row) => row.site === site);
@@ -60,7 +60,7 @@ export async function readStatus(store: Store): Promise<SiteStatus[]> {
       site,
       ...fromCounts(counts.find((row) => row.site === site)),
       ...(await ofSegments(store, site)),
-      ...(await ofSpans(store, shelf, site)),
+      ...(await ofSpans(store, layouts, site)),
       refused: refused.reduce((sum, row) => sum + row.count, 0),
       refusedReason: refused.at(-1)?.message ?? null,
     });
@@ -134,7 +134,7 @@ async function ofSegments(store: Store, site: string) {
   };
 }
 
-async function ofSpans(store: Store, shelf: Shelf, site: string) {
+async function ofSpans(store: Store, layouts: Layouts, site: string) {
   const spans = await store.db
     .selectFrom('spans')
     .select(['segment', 'bundle', 'first_tick', 'ticks'])
@@ -147,11 +147,12 @@ async function ofSpans(store: Store, shelf: Shelf, site: string) {
     .where('site', '=', site)
     .executeTakeFirstOrThrow();
   const last = spans.at(-1);
-  const shelved = last ? await shelf.find(last.bundle) : null;
-  if (!last || !shelved) {
+  const known = last ? await layouts.find(last.bundle) : null;
+  if (!last || !known) {
     return { fromMs: null, toMs: null, ticks: 0, corrections: 0, bundle: null, residuals: [] };
   }
-  const { tickMs, channels } = shelved.bundle;
+  const { isOfBundle, layout } = known;
+  const { tickMs, channels } = layout;
   const toTick = last.first_tick + last.ticks;
   const recent = toTick - Math.ceil(RECENT_MS / tickMs);
   const all = await sumResiduals(store, site, last.bundle, 0);
@@ -162,8 +163,11 @@ async function ofSpans(store: Store, shelf: Shelf, site: string) {
     toMs: toTick * tickMs,
     ticks: spans.reduce((sum, span) => sum + span.ticks, 0),
     corrections: Number(corrections.count),
-    bundle: last.bundle,
-    residuals: signals.map((signal, channel) => healthOf(signal, all.get(channel), late.get(channel))),
+    bundle: isOfBundle ? last.bundle : null,
+    // Without a bundle nothing was forecast: there are no residuals to judge.
+    residuals: !isOfBundle
+      ? []
+      : signals.map((signal, channel) => healthOf(signal, all.get(channel), late.get(channel))),
   };
 }
 

@@ -2,8 +2,8 @@
  * Joins what the desk recovered with the files of the first fit into one series: where both cover a tick, the archive wins,
  * since it is what the gateway really saw, late readings included.
  */
-import type { Signal, Site } from '@stillwell/protocol';
-import type { Archive } from '../desk/archive.ts';
+import { latticeIndex, latticeValue, type Signal, type Site } from '@stillwell/protocol';
+import type { Archive, ArchivedChannel } from '../desk/archive.ts';
 import { TrainError } from '../errors.ts';
 import { believe } from '../exclusions.ts';
 import { channelsOf } from '../history/channels.ts';
@@ -36,11 +36,11 @@ export function absorb(archive: Archive, files: History | null, site: Site): Abs
   const channels = channelsOf(site);
   checkFit(archive, channels, site);
   const ofArchive = asHistory(archive, channels, site);
-  const lattices = channels.map(({ name }) => archive.channels.find((one) => one.name === name)!.lattice);
-  const before = files === null ? null : layOnTicks(believe(files, site).seen, site, lattices);
-  const series = overlay(archive, before, channels, site);
   const history = files === null ? ofArchive : joined(files, ofArchive);
-  const found = findLattices(history, site).map((one, c) => ({ ...one, ...lattices[c]! }));
+  const found = findLattices(history, site).map((one, c) => ({ ...one, ...archived(archive, channels[c]!).lattice }));
+  const lattices = found.map(({ step, offset }) => ({ step, offset }));
+  const before = files === null ? null : layOnTicks(believe(files, site).seen, site, lattices);
+  const series = overlay(archive, before, channels, lattices, site);
   const marked = believe(history, site).mark(series);
   return {
     series: marked,
@@ -48,6 +48,10 @@ export function absorb(archive: Archive, files: History | null, site: Site): Abs
     lattices,
     newFromTick: before === null ? series.firstTick : before.firstTick + before.ticks,
   };
+}
+
+function archived(archive: Archive, { name }: Signal): ArchivedChannel {
+  return archive.channels.find((one) => one.name === name)!;
 }
 
 function checkFit(archive: Archive, channels: readonly Signal[], site: Site): void {
@@ -69,7 +73,13 @@ function checkFit(archive: Archive, channels: readonly Signal[], site: Site): vo
 }
 
 /** Archive and earlier series by channel, over all ticks from the first to the last. */
-function overlay(archive: Archive, before: Series | null, channels: readonly Signal[], site: Site): Series {
+function overlay(
+  archive: Archive,
+  before: Series | null,
+  channels: readonly Signal[],
+  lattices: readonly Lattice[],
+  site: Site,
+): Series {
   const { ticks } = archive;
   const firstTick = Math.min(ticks[0]!, before?.firstTick ?? Number.POSITIVE_INFINITY);
   const end = Math.max(ticks[ticks.length - 1]! + 1, before === null ? 0 : before.firstTick + before.ticks);
@@ -83,11 +93,15 @@ function overlay(archive: Archive, before: Series | null, channels: readonly Sig
         'clock: give --from or --until',
     );
   }
-  const values = channels.map(({ name }, c) => {
+  const values = channels.map((channel, c) => {
     const laid = new Float64Array(count).fill(Number.NaN);
     if (before !== null) laid.set(before.values[c]!, before.firstTick - firstTick);
-    const column = archive.channels.find((one) => one.name === name)!.values;
-    for (let i = 0; i < ticks.length; i++) if (!Number.isNaN(column[i])) laid[ticks[i]! - firstTick] = column[i]!;
+    const { values: column } = archived(archive, channel);
+    const { step, offset } = lattices[c]!;
+    // What was recorded under a bundle lies there already; without one a stray may not.
+    for (let i = 0; i < ticks.length; i++)
+      if (!Number.isNaN(column[i]))
+        laid[ticks[i]! - firstTick] = latticeValue(latticeIndex(column[i]!, step, offset), step, offset);
     return laid;
   });
   const digest = digestOf(site.tickMs, firstTick, values);
@@ -99,7 +113,7 @@ function overlay(archive: Archive, before: Series | null, channels: readonly Sig
 /** The archive's values as readings at the labels of their ticks, for the survey. */
 function asHistory(archive: Archive, channels: readonly Signal[], site: Site): History {
   const times = archive.ticks.map((tick) => tick * archive.tickMs);
-  const values = channels.map(({ name }) => archive.channels.find((one) => one.name === name)!.values);
+  const values = channels.map((channel) => archived(archive, channel).values);
   const file: FileRead = {
     file: `archive of ${archive.site}`,
     format: 'desk archive',

@@ -64,7 +64,7 @@ function expectExact(archive: Archive, maker: SegmentMaker): void {
   expect(Array.from(archive.ticks)).toEqual([...maker.ticks].sort((a, b) => a - b));
   archive.channels.forEach((channel, c) => {
     const value = (seen: Map<string, number>, tick: number): number =>
-      latticeValue(seen.get(`${tick} ${c}`) ?? Number.NaN, channel.lattice.step, channel.lattice.offset);
+      latticeValue(seen.get(`${tick} ${c}`) ?? Number.NaN, channel.lattice!.step, channel.lattice!.offset);
     expect(Array.from(channel.original)).toEqual(Array.from(archive.ticks, (tick) => value(maker.original, tick)));
     expect(Array.from(channel.values)).toEqual(Array.from(archive.ticks, (tick) => value(maker.corrected, tick)));
   });

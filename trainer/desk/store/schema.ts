@@ -58,7 +58,11 @@ export interface ConflictTable {
   received_ms: number;
 }
 
-/** Lattice numbers of a decoded segment: deflated float64 little-endian, tick by tick, NaN where missing. */
+/**
+ * Lattice numbers of a decoded segment: deflated float64 little-endian, tick by tick, NaN where missing; behind them, of a
+ * segment without a bundle, pairs of place and reading for what lay off the lattice. `bundle` is the digest of the bundle,
+ * or else of the layout that the segment says.
+ */
 export interface SpanTable {
   segment: number;
   site: string;
@@ -97,6 +101,13 @@ export interface BundleTable {
   added_ms: number;
 }
 
+/** What the columns of spans made without a bundle hold, by hex digest: such segments say it themselves. */
+export interface LayoutTable {
+  digest: string;
+  site: string;
+  document: Blob;
+}
+
 /** What was refused and never receipted, counted by cause. */
 export interface RefusalTable {
   site: string;
@@ -115,11 +126,16 @@ export interface Tables {
   corrections: CorrectionTable;
   residuals: ResidualTable;
   bundles: BundleTable;
+  layouts: LayoutTable;
   refusals: RefusalTable;
 }
 
 /** Step i brings a store of version i to version i + 1; steps are only ever added. */
-export const SCHEMA_STEPS: readonly ((db: Kysely<Tables>) => Promise<void>)[] = [createFirstTables, indexWhatIsNew];
+export const SCHEMA_STEPS: readonly ((db: Kysely<Tables>) => Promise<void>)[] = [
+  createFirstTables,
+  indexWhatIsNew,
+  keepLayouts,
+];
 
 async function createFirstTables(db: Kysely<Tables>): Promise<void> {
   for (const statement of FIRST_TABLES) await sql.raw(statement).execute(db);
@@ -129,6 +145,13 @@ async function createFirstTables(db: Kysely<Tables>): Promise<void> {
 async function indexWhatIsNew(db: Kysely<Tables>): Promise<void> {
   await sql.raw('CREATE INDEX spans_end ON spans (site, (first_tick + ticks))').execute(db);
   await sql.raw('CREATE INDEX corrections_tick ON corrections (site, tick)').execute(db);
+}
+
+/** Segments made without a bundle are decoded from here on. */
+async function keepLayouts(db: Kysely<Tables>): Promise<void> {
+  await sql
+    .raw('CREATE TABLE layouts (digest TEXT PRIMARY KEY, site TEXT NOT NULL, document BLOB NOT NULL)')
+    .execute(db);
 }
 
 const FIRST_TABLES = [
