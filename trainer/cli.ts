@@ -21,6 +21,7 @@ const commands: Readonly<Record<string, () => Promise<Command>>> = {
   hindcast: async () => (await import('./commands/hindcast.ts')).hindcastCommand(),
   roll: async () => (await import('./commands/roll.ts')).rollCommand(),
   watch: async () => (await import('./commands/watch.ts')).watchCommand(),
+  ask: async () => (await import('./commands/ask.ts')).askCommand(),
   desk: async () => (await import('./commands/desk.ts')).deskCommand(),
   refit: async () => (await import('./commands/refit.ts')).refitCommand(),
 };

@@ -5,12 +5,16 @@ import { describe, expect, onTestFinished, test } from 'vitest';
 import { systemClock } from '../../runtime/clock.ts';
 import { nodeDisk } from '../../runtime/disk.ts';
 import { Gateway } from '../../runtime/gateway.ts';
+import { askCommand } from '../../trainer/commands/ask.ts';
 import { mosquittoMissing, startAedes, startMosquitto, type TestBroker } from '../support/broker.ts';
+import { hearing } from '../support/command.ts';
 import { testFolder } from '../support/folder.ts';
 import { plantMessages, SITE_NAME, sealedOf, site, trusted } from '../support/running-site.ts';
 import { until } from '../support/until.ts';
 
 const topics = topicsOf(site.root, SITE_NAME);
+
+const hear = hearing();
 
 async function stage(broker: TestBroker) {
   const silent = { debug: () => {}, info: () => {}, warn: () => {}, error: () => {} };
@@ -110,6 +114,26 @@ describe.each(brokers)('on %s', (_, startBroker, missing) => {
         isNew ? { 'no-forecast': 1, 'response-topic': 1 } : { 'no-forecast': 1 },
       );
       expect(elsewhere).toEqual([]);
+
+      // From a shell.
+      const from = ['--broker', broker.url, '--site', SITE_NAME];
+      const shown = await hear(askCommand(), ...from, '--plan', 'pump=12', '--signal', 'level', '--horizon', '10min');
+      expect(shown).toMatch(
+        /^marsh-lane: bundle number 1, origin [^\n]*\ninputs in the answer: pump planned\n\nlevel in m\n/,
+      );
+      const line = JSON.parse(await hear(askCommand(), ...from, '--plan', 'pump=none', '--json')) as AnswerMessage;
+      expect(line).toMatchObject({ outcome: 'answered', inputs_ahead: [{ input: 'pump', use: 'expected' }] });
+      expect(line.signals!.map(({ median, present }) => [median, present.median])).toEqual(
+        line.signals!.map(({ median }) => [median, median]),
+      );
+      await expect(hear(askCommand(), ...from, '--plan', 'pmup=1')).rejects.toThrow(
+        'marsh-lane refused (fields): question: plans: no such name, "pmup"; did you mean "pump"?',
+      );
+      // Nobody answers for a site that is not there.
+      const silent = ['--broker', broker.url, '--site', 'nowhere', '--plan', 'pump=1', '--wait', '0.3'];
+      await hear(askCommand(), ...silent);
+      expect(process.exitCode).toBe(1);
+      process.exitCode = 0;
     },
     30_000,
   );

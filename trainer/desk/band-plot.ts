@@ -5,15 +5,16 @@
 
 /**
  * shapes  lower, median, upper of equal length, one entry a step; non-finite steps are left blank
- * units   any, the same for all; `width` columns, `height` rows
+ * units   any, the same for all; `width` columns, `height` rows from `scale`'s low to its high
  */
 export function bandPlot(
   path: { readonly lower: readonly number[]; readonly median: readonly number[]; readonly upper: readonly number[] },
   width: number,
   height: number,
+  scale = rangeOf([...path.lower, ...path.median, ...path.upper]),
 ): string[] {
   const columns = Math.max(1, Math.min(width, path.median.length));
-  const { low, high } = rangeOf([...path.lower, ...path.median, ...path.upper]);
+  const { low, high } = scale;
   const rowOf = (value: number): number =>
     Math.min(height - 1, Math.max(0, Math.floor(((value - low) / (high - low)) * height)));
   const rows = Array.from({ length: height }, () => Array.from({ length: columns }, () => ' '));
@@ -35,7 +36,8 @@ function partOf(height: number): string {
   return '▁▂▃▄▅▆▇█'[Math.min(7, Math.floor(part * 8))]!;
 }
 
-function rangeOf(values: readonly number[]): { low: number; high: number } {
+/** Lowest and highest of what is to be drawn; never of one value alone. */
+export function rangeOf(values: readonly number[]): { low: number; high: number } {
   const finite = values.filter(Number.isFinite);
   const low = Math.min(...finite);
   const high = Math.max(...finite);
