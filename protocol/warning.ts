@@ -55,7 +55,7 @@ export interface LimitWarning {
   readonly sinceMs: number;
   /** Of crossing within the horizon; of a warning that expired, as it was said last. */
   readonly probability: number;
-  /** When the chance of having crossed passes the lower end's share of the bounds, one half, the upper end's; null: never within the horizon. */
+  /** When the nearer bound lies past the limit, when it is crossed if it is, when the farther bound does; null: not in sight. */
   readonly earliestMs: number | null;
   readonly likelyMs: number | null;
   readonly latestMs: number | null;

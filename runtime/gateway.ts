@@ -87,16 +87,7 @@ export class Gateway {
     this.#groupSync = new GroupSync({ clock, sync: async () => this.engine.journal.syncSoon() });
     this.#connection = this.#connect();
     this.#publisher = new Publisher(config, ports, this.#connection, this.#topics);
-    this.#questions = new Questions({
-      site,
-      gateway,
-      topics: this.#topics,
-      log,
-      monotonic: () => clock.monotonic(),
-      present: () => this.#present(),
-      nowMs: () => this.#nowMs(),
-      publish: (message) => this.#connection.publish(message),
-    });
+    this.#questions = this.#openQuestions();
     this.#shipper = new Shipper({
       spool: this.engine.spool,
       clock,
@@ -159,6 +150,21 @@ export class Gateway {
       ...(firstRetryMs === undefined ? {} : { backOff: { firstMs: firstRetryMs } }),
       onMessage: (topic, payload, packet) => this.#take(topic, payload, packet),
       onState: (event) => this.#onConnection(event),
+    });
+  }
+
+  #openQuestions(): Questions {
+    const { site, gateway } = this.#config;
+    const { clock, log } = this.#ports;
+    return new Questions({
+      site,
+      gateway,
+      topics: this.#topics,
+      log,
+      monotonic: () => clock.monotonic(),
+      present: () => this.#present(),
+      nowMs: () => this.#nowMs(),
+      publish: (message) => this.#connection.publish(message),
     });
   }
 

@@ -104,20 +104,20 @@ export function healthPayload(report: HealthReport): Uint8Array {
       segments_in_conflict: ship.conflicts,
       segments_shed: journal.counts.shedSegments,
       segments_lost: journal.counts.lost + spool.damaged,
-      ...planCounts(engine),
+      ...furtherCounts(report),
       ...sparkplugCounts(engine),
       spool_bytes: spool.bytes,
       reconnects: report.reconnects,
-      ...report.counts,
     },
     lastChange: report.lastChange,
     versions: VERSIONS,
   });
 }
 
-/** Nothing at sites without plans. */
-function planCounts({ plans }: Engine): Record<string, number | Readonly<Record<string, number>>> {
-  return plans.filters.length === 0 ? {} : { plans: plans.taken, plans_refused: plans.refused };
+/** Nothing of plans at sites without them. */
+function furtherCounts({ engine, counts }: HealthReport): Record<string, number | Readonly<Record<string, number>>> {
+  const { plans } = engine;
+  return { ...(plans.filters.length === 0 ? {} : { plans: plans.taken, plans_refused: plans.refused }), ...counts };
 }
 
 /** Nothing at sites without that standard. */

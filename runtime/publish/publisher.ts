@@ -45,10 +45,20 @@ export class Publisher {
     this.#ports = ports;
     this.#connection = connection;
     this.#topics = topics;
-    const { site, data: folder } = config;
+    const { site, data: folder, clock } = config;
+    const isWallTime = clock === 'wall';
     const isReady = (): boolean => this.#isReady;
     const publish = (message: Outgoing): Promise<void> => connection.publish(message);
-    this.#warnings = new Warnings({ site, topics, folder, disk: ports.disk, log: ports.log, isReady, publish });
+    this.#warnings = new Warnings({
+      site,
+      topics,
+      folder,
+      disk: ports.disk,
+      log: ports.log,
+      isWallTime,
+      isReady,
+      publish,
+    });
   }
 
   /** The broker is there and keeps up. */

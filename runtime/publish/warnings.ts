@@ -29,10 +29,19 @@ export interface WarningPorts {
   readonly disk: Disk;
   readonly folder: string;
   readonly log: Log;
+  /** Whether times are the wall clock's: of event time a broker, who drops what has expired, knows nothing. */
+  readonly isWallTime: boolean;
   /** Whether the broker takes something now. */
   readonly isReady: () => boolean;
   /** Resolves when the broker has it. */
   readonly publish: (message: Outgoing) => Promise<void>;
+}
+
+/** Tick closed last, the moment of the message, and how many ticks ahead are looked at. */
+interface Now {
+  readonly tick: number;
+  readonly issuedAtMs: number;
+  readonly horizon: number;
 }
 
 /** See the file head. */
@@ -76,7 +85,8 @@ export class Warnings {
     if (occasion.isCatchingUp) return;
     for (const [i, one] of this.#signals.entries())
       this.opened += one.look(serving.tick, outlooks[i]!, readingOf(serving, i), trustOf(serving, i));
-    this.#say((i) => headOf(serving, occasion, i), serving.tick, occasion.issuedAtMs);
+    const now = { tick: serving.tick, issuedAtMs: occasion.issuedAtMs, horizon: serving.model.horizon };
+    this.#say((i) => headOf(serving, occasion, i), now);
   }
 
   /** No bundle serves: nothing can be said any more. tick  closed last */
@@ -91,49 +101,34 @@ export class Warnings {
       quality: 'F' as const,
       qualityReason: reason,
     };
-    this.#say(() => failed, tick, head.issuedAtMs);
+    this.#say(() => failed, { tick, issuedAtMs: head.issuedAtMs, horizon: this.#ports.site.horizon });
   }
 
-  #say(headOfSignal: (signal: number) => MessageHead, tick: number, issuedAtMs: number): void {
+  #say(headOfSignal: (signal: number) => MessageHead, now: Now): void {
     const due = this.#signals.flatMap((one, i) => (one.isDue ? [{ one, i }] : []));
     const isReady = this.#ports.isReady();
     if (due.length > 0 && isReady) for (const { one } of due) one.sent();
     if ((due.length > 0 && isReady) || this.#signals.some(({ hasChanged }) => hasChanged)) this.#keep();
     if (!isReady) return;
-    for (const { one, i } of due) this.#publish(one, i, headOfSignal(i), tick, issuedAtMs);
+    for (const { one, i } of due) this.#publish(one, i, headOfSignal(i), now);
     this.#blankOld();
   }
 
-  #publish(one: SignalWarnings, signal: number, head: MessageHead, tick: number, issuedAtMs: number): void {
-    const { site, topics, publish, log } = this.#ports;
+  #publish(one: SignalWarnings, signal: number, head: MessageHead, { tick, issuedAtMs, horizon }: Now): void {
+    const { site, topics, publish, log, isWallTime } = this.#ports;
     const { name, unit } = site.signals[signal]!;
-    const { tickMs, horizon } = site;
+    const { tickMs } = site;
     const words = one.words();
     if (words.length === 0) return;
-    const validUntilMs = validUntil(tick + renewTicks(horizon), site);
-    const facts = {
-      ...head,
-      validUntilMs,
-      signal: name,
-      unit,
-      originMs: tick * tickMs,
-      tickMs,
-      horizon,
-      warnings: words,
-    };
+    const validUntilMs = validUntil(tick + renewTicks(site.horizon), site);
+    const about = { signal: name, unit, originMs: tick * tickMs, tickMs, horizon };
+    const payload = warningMessage({ ...head, validUntilMs, ...about, warnings: words });
     const topic = topics.warning(name);
     this.#toBlank.delete(topic);
     const isOpen = one.openCount > 0;
-    const leftMs = validUntilMs - issuedAtMs;
+    const leftMs = isWallTime ? validUntilMs - issuedAtMs : Number.NaN;
     const expiry = leftMs > 0 ? { expirySeconds: leftMs / 1000 } : {};
-    const said = publish({
-      topic,
-      payload: warningMessage(facts),
-      qos: 1,
-      retain: isOpen,
-      contentType: JSON_TYPE,
-      ...expiry,
-    });
+    const said = publish({ topic, payload, qos: 1, retain: isOpen, contentType: JSON_TYPE, ...expiry });
     const blanked = isOpen ? null : publish({ topic, payload: NOTHING, qos: 1, retain: true });
     Promise.all([said, blanked]).then(
       () => {

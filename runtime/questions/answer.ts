@@ -35,6 +35,8 @@ export class Answerer {
     if (this.#plan.length !== inputCount * model.horizon) this.#plan = new Float64Array(inputCount * model.horizon);
     if (this.#paths.median.length !== serving.median.length) this.#paths = pathsOf(serving.median.length);
     const { site } = occasion;
+    // A bundle may reach less far than the site file says.
+    const steps = Math.min(question.steps, model.horizon);
     const inputs = this.#inputsUnder(serving, occasion, question);
     const asked = question.signals.map((signal): { signal: number; outlooks: Outlook[] } => ({ signal, outlooks: [] }));
     serving.whatIf(
@@ -56,12 +58,12 @@ export class Answerer {
       signals: asked.map(({ signal, outlooks }) => ({
         signal: site.signals[signal]!.name,
         unit: site.signals[signal]!.unit,
-        ...shown(serving, this.#paths, signal, question.steps, outlooks),
+        ...shown(serving, this.#paths, signal, steps, outlooks),
         present: shown(
           serving,
           serving,
           signal,
-          question.steps,
+          steps,
           outlooksOf(serving, serving.median, signal, site.signals[signal]!.limits),
         ),
       })),

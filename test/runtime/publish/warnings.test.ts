@@ -44,6 +44,7 @@ class Life {
       disk,
       folder: 'data',
       log: { debug: take, info: take, warn: take, error: take },
+      isWallTime: true,
       isReady: () => this.isReady,
       publish: (message) => this.#publish(message),
     });
