@@ -12,12 +12,14 @@ import {
   parseForecastsMessage,
   parseHealthMessage,
   parseTopic,
+  parseWarningMessage,
   topicsOf,
 } from '@stillwell/protocol';
 import { type Connection, openConnection } from '@stillwell/runtime/mqtt';
 import { type Broker, startBroker } from './broker.ts';
 import { Processes, type Running, residentMiB } from './processes.ts';
 import { SegmentWatch } from './segment-watch.ts';
+import { WarningWatch } from './warning-watch.ts';
 
 /** First level of the gateways' topics. */
 export const ROOT = 'stillwell';
@@ -67,6 +69,7 @@ export class Fleet {
   readonly broker: Broker;
   readonly processes: Processes;
   readonly segments: SegmentWatch;
+  readonly warnings = new WarningWatch();
   /** Last health heard of each site. */
   readonly health = new Map<string, HealthMessage>();
   /** Largest resident memory seen of each gateway, MiB. */
@@ -100,10 +103,10 @@ export class Fleet {
   static async open(options: FleetOptions): Promise<Fleet> {
     const fleet = new Fleet(options, await startBroker());
     await fleet.connection.firstConnect(CONNECT_TIMEOUT_MS);
-    const { forecastAll, health, segments } = topicsOf(ROOT, '+');
+    const { forecastAll, health, segments, warning } = topicsOf(ROOT, '+');
     const { closely } = options;
     const one = closely === undefined ? [] : [topicsOf(ROOT, closely.site).forecast(closely.signal)];
-    await fleet.connection.subscribe([forecastAll, health, segments, ...one], 1);
+    await fleet.connection.subscribe([forecastAll, health, segments, warning('+'), ...one], 1);
     return fleet;
   }
 
@@ -228,7 +231,10 @@ export class Fleet {
     try {
       if (parsed.kind === 'forecastAll') this.options.onForecasts(parsed.site, parseForecastsMessage(payload));
       else if (parsed.kind === 'forecast') this.options.closely?.hear(parseForecastMessage(payload));
-      else if (parsed.kind === 'health') {
+      else if (parsed.kind === 'warning') {
+        // Blanked: none is open any more.
+        if (payload.length > 0) this.warnings.hear(parseWarningMessage(payload));
+      } else if (parsed.kind === 'health') {
         this.health.set(parsed.site, parseHealthMessage(payload));
       } else if (parsed.kind === 'segments') this.segments.hear(topic, payload);
     } catch (error) {

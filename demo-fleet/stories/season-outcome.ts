@@ -11,8 +11,8 @@ import type { SegmentCounts } from '../segment-watch.ts';
 import type { SiteRun } from '../site-run.ts';
 import type { StandIn } from '../stand-in.ts';
 import { type Defrosts, planLine, planOutcome, planVerdicts, WRONG_PLAN } from './season-defrosts.ts';
-import { LEAST_SKILL, ROUGH, segmentTicks, WORN_SITE } from './season-plan.ts';
-import { refitLine, type SiteOutcome, segmentTable, skillTable } from './season-tables.ts';
+import { LEAST_SKILL, PLANNED, PLANNED_SITE, ROUGH, segmentTicks, WORN_SITE } from './season-plan.ts';
+import { refitLine, type SiteOutcome, segmentTable, skillTable, warningLines } from './season-tables.ts';
 import type { StoryContext, StoryResult } from './story.ts';
 
 /** Bounds of the promises. */
@@ -55,6 +55,7 @@ export async function gatherOutcome(inputs: Inputs): Promise<Omit<StoryResult, '
     ...outcomes.flatMap(siteVerdicts),
     ...refitVerdicts(before, after),
     ...planVerdicts(plan),
+    ...warningVerdicts(sites, fleet),
     // Without one sent twice, the promise that doubles are kept once would be kept by doing nothing.
     expectBetween(
       'fleet',
@@ -71,9 +72,21 @@ export async function gatherOutcome(inputs: Inputs): Promise<Omit<StoryResult, '
     expectExactly('fleet', 'every message of a gateway can be read', fleet.unreadable.length, 0),
   ];
   return {
-    report: [skillTable(outcomes), segmentTable(outcomes), refitLine(before, after), planLine(plan)].join('\n\n'),
+    report: [
+      skillTable(outcomes),
+      segmentTable(outcomes),
+      refitLine(before, after),
+      planLine(plan),
+      warningLines(sites, fleet.warnings),
+    ].join('\n\n'),
     verdicts,
-    figures: { sites: outcomes.map(figuresOf), refit: { before, after }, plan, unreadable: fleet.unreadable },
+    figures: {
+      sites: outcomes.map(figuresOf),
+      refit: { before, after },
+      plan,
+      warnings: Object.fromEntries(fleet.warnings.bySite),
+      unreadable: fleet.unreadable,
+    },
     lookAt: lookAt(fleet, sites),
   };
 }
@@ -166,6 +179,25 @@ function sumOf(outcomes: readonly SiteOutcome[], pick: (one: SiteOutcome) => num
   return outcomes.reduce((sum, one) => sum + pick(one), 0);
 }
 
+/** Through a lost power, a cut link and everything else each warning opens once and then ends. */
+function warningVerdicts(sites: readonly SiteRun[], { warnings }: Fleet): Verdict[] {
+  const counts = sites.map(({ name }) => warnings.of(name));
+  return [
+    expectBetween(
+      'fleet',
+      'warnings of limits opened',
+      counts.reduce((sum, one) => sum + one.opened, 0),
+      [1, Number.POSITIVE_INFINITY],
+    ),
+    expectExactly(
+      'fleet',
+      'warnings that opened twice, or ended without a beginning',
+      counts.reduce((sum, one) => sum + one.odd, 0),
+      0,
+    ),
+  ];
+}
+
 function refitVerdicts(before: Score | null, after: Score | null): Verdict[] {
   const gain = before === null || after === null ? Number.NaN : 1 - after.mse / before.mse;
   return [
@@ -198,6 +230,7 @@ function lookAt(fleet: Fleet, sites: readonly SiteRun[]): string[] {
   return [
     `broker          ${fleet.broker.url}`,
     `live forecasts  npx stillwell watch --broker ${fleet.broker.url} --site ${sites[0].name} --clock readings`,
+    `what if there were no plan  npx stillwell ask --broker ${fleet.broker.url} --site ${PLANNED_SITE} --plan ${PLANNED.input}=none`,
     `what the desk holds  npx stillwell desk status --data ${fleet.archiveFolder}`,
   ];
 }

@@ -8,6 +8,7 @@ import { formatColumns } from '../progress.ts';
 import { RIVALS, type Score } from '../scores.ts';
 import type { SegmentCounts } from '../segment-watch.ts';
 import type { SiteRun } from '../site-run.ts';
+import type { WarningWatch } from '../warning-watch.ts';
 import { WORN_SITE } from './season-plan.ts';
 
 /** What one site came to. */
@@ -74,6 +75,18 @@ export function segmentTable(outcomes: readonly SiteOutcome[]): string {
     'MiB',
   ];
   return `Segments, archive against what the sensors said, bundle size, gateway memory:\n${formatColumns(heads, rows)}`;
+}
+
+/** What was warned of, as sentences. */
+export function warningLines(sites: readonly SiteRun[], warnings: WarningWatch): string {
+  const heard = sites.flatMap(({ name }) => {
+    const { opened, cameTrue, leads, messages } = warnings.of(name);
+    if (opened === 0) return [];
+    const lead = [...leads].sort((a, b) => a - b)[leads.length >> 1];
+    const ahead = lead === undefined ? '' : `, ${lead} min ahead in the middle`;
+    return [`${name} ${opened} opened, ${cameTrue} came true${ahead} (${messages} messages)`];
+  });
+  return `Warnings of limits: ${heard.length === 0 ? 'none' : heard.join('; ')}`;
 }
 
 /** What the refit gained, as a sentence. */
