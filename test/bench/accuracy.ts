@@ -7,6 +7,7 @@ import { openRows } from './accuracy-open.ts';
 import { planRows } from './accuracy-plans.ts';
 import { splitRows } from './accuracy-split.ts';
 import { type BenchOptions, isWanted, type Row } from './harness.ts';
+import { warningRows } from './warning-rows.ts';
 import { wetWellRows } from './wet-well.ts';
 
 /** Rows of the suite. */
@@ -16,4 +17,5 @@ export async function* rows(options: BenchOptions): AsyncIterable<Row> {
   yield* planRows(options);
   yield* openRows(options);
   if (isWanted(options, 'wet well')) yield* wetWellRows(options);
+  if (options.only !== null && isWanted(options, 'warnings')) yield* warningRows(options);
 }
