@@ -135,6 +135,24 @@ const splitShared = (filter: string): string => {
 };
 
 /**
+ * Whether every topic name under one filter falls under another one too.
+ *
+ * units   both already checked, neither shared
+ * source  OASIS MQTT 5.0 sections 4.7.1, 4.7.2 [MQTT-4.7.2-1]
+ */
+export const coversFilter = (wide: string, narrow: string): boolean => {
+  const levels = narrow.split('/');
+  const wanted = wide.split('/');
+  if (narrow.startsWith('$') && (wanted[0] === '+' || wanted[0] === '#')) return false;
+  for (let i = 0; i < wanted.length; i++) {
+    if (wanted[i] === '#') return true;
+    if (i >= levels.length || levels[i] === '#') return false;
+    if (wanted[i] !== '+' && wanted[i] !== levels[i]) return false;
+  }
+  return wanted.length === levels.length;
+};
+
+/**
  * Whether a topic name falls under a topic filter.
  *
  * units   both already checked; a shared subscription matches as the filter inside it

@@ -28,7 +28,9 @@ export interface SavedMember {
   readonly metrics: readonly (readonly [metric: string, datatype: number, alias: Alias | null])[];
 }
 
-const isGoodQuality = (quality: unknown): boolean => quality === undefined || quality === GOOD_QUALITY;
+/** A metric without the property is good, whatever else counts (6.4.9). */
+const isGoodQuality = (quality: unknown, isGood: GoodTest | null): boolean =>
+  quality === undefined || (isGood === null ? quality === GOOD_QUALITY : isGood(quality));
 
 /** See the file head. Bounded by the site file: of a birth only what is wanted is kept. */
 export class Member {
@@ -123,7 +125,7 @@ function deliver(
   timeMs: number,
   target: ReadingTarget,
 ): void {
-  if (!(isGood ?? isGoodQuality)(metric.quality)) target.refuse(channel, 'quality', name, metric.quality);
+  if (!isGoodQuality(metric.quality, isGood)) target.refuse(channel, 'quality', name, metric.quality);
   else if (metric.isNull || metric.form === 0) target.refuse(channel, 'absent', name, null);
   else {
     const raw = metricNumber(metric, datatype);

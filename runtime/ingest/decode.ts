@@ -1,5 +1,6 @@
 /** A site's topics and payloads: what to subscribe to, and from messages to readings of channels. */
 import {
+  coversFilter,
   MessageDecoder,
   parseSparkplugSource,
   type ReadingTarget,
@@ -11,7 +12,7 @@ import {
 /** A site's mapping from topics to channels. */
 export class ReadingDecoder {
   readonly #decoder: MessageDecoder;
-  /** Topic filters to subscribe, each once. */
+  /** Topic filters to subscribe: each once, and none that another one covers, since a broker may then send twice. */
   readonly filters: readonly string[];
 
   constructor(site: Site) {
@@ -22,7 +23,8 @@ export class ReadingDecoder {
       const source = payload.kind === 'sparkplug' ? parseSparkplugSource(topic) : null;
       return source === null ? [topic] : sparkplugFilters(source);
     });
-    this.filters = [...new Set(wanted)];
+    const each = [...new Set(wanted)];
+    this.filters = each.filter((filter) => !each.some((other) => other !== filter && coversFilter(other, filter)));
   }
 
   /** Sessions of the plant's Sparkplug nodes; null where no signal comes from one. */
