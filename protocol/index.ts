@@ -64,6 +64,8 @@ export type { ExcludedSpan, ExcludedWhile, Exclusion } from './site-exclude.ts';
 export { formatExclude, formatSite } from './site-format.ts';
 export { defaultWarnRule, type SignalWarn, type WarnRule, type WarnWords, warnRuleOf } from './site-warn.ts';
 export type { MemberState } from './sparkplug/member.ts';
+export { metricNames } from './sparkplug/payload.ts';
+export { parseSavedNodes } from './sparkplug/saved.ts';
 export type { SavedNode, SourceState, SparkplugCounts, SparkplugSessions } from './sparkplug/sessions.ts';
 export { parseSparkplugSource, parseSparkplugTopic, sparkplugFilters } from './sparkplug/topic.ts';
 export * from './state.ts';

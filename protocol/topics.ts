@@ -141,6 +141,8 @@ const splitShared = (filter: string): string => {
  * source  OASIS MQTT 5.0 sections 4.7.1, 4.7.2 [MQTT-4.7.2-1]
  */
 export const coversFilter = (wide: string, narrow: string): boolean => {
+  // Every topic has a first level.
+  if (narrow === '#') return wide === '#' || wide === '+/#';
   const levels = narrow.split('/');
   const wanted = wide.split('/');
   if (narrow.startsWith('$') && (wanted[0] === '+' || wanted[0] === '#')) return false;

@@ -7,6 +7,7 @@ import { type ReadingTarget, type Site, wrapOf } from '@stillwell/protocol';
 import type { BundleKeeper } from './bundle/change.ts';
 import { Counters } from './health.ts';
 import { Aligner, type LateChange } from './ingest/align.ts';
+import { BirthFile } from './ingest/births.ts';
 import { ReadingDecoder } from './ingest/decode.ts';
 import { PlanKeeper, type PlanOutcome } from './ingest/plans.ts';
 import { refusedBecause } from './ingest/quality.ts';
@@ -41,6 +42,8 @@ export class Engine {
   readonly spool: Spool;
   readonly identity: Identity;
   readonly #options: EngineOptions;
+  /** Null at sites without Sparkplug. */
+  readonly #births: BirthFile | null;
   readonly #recent: RecentTicks;
   readonly #ranges: readonly (readonly [number, number] | null)[];
   /** Of the message being read: what stands for the time of readings without one, and the latest that is believed. */
@@ -74,6 +77,8 @@ export class Engine {
     this.#plain = PlainRecord.of(site);
     this.#journal = this.#openJournal(start.from?.recovered.checkpoint ?? { number: 0, sinceKeyed: 0 });
     this.#start(keeper, start);
+    const { sparkplug } = this.decoder;
+    this.#births = sparkplug === null ? null : new BirthFile(disk, folder, sparkplug, this.aligner.newestMs);
   }
 
   get streamName(): string {
@@ -131,6 +136,7 @@ export class Engine {
 
   /** Hands the record to the disk, and closes the open segment if it is due. Call when forecasts are out. */
   settle(retry = false): void {
+    if (retry) this.#births?.save();
     const journal = this.#journal;
     if (retry && journal.fault !== null) this.#turnOver();
     this.#turnIfDue();
@@ -153,6 +159,7 @@ export class Engine {
 
   /** Leaves everything on disk. */
   stop(): void {
+    this.#births?.save();
     this.settle();
     this.#journal.stop();
   }

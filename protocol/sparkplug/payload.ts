@@ -9,6 +9,17 @@ const TIMESTAMP = 1;
 const METRICS = 2;
 const SEQ = 3;
 
+/** Names of the metrics of a payload, at most so many; none where it is no payload. */
+export const metricNames = (payload: Uint8Array, most: number): readonly string[] => {
+  const reader = new PayloadReader();
+  const names: string[] = [];
+  if (reader.open(payload))
+    reader.visit(({ name }) => {
+      if (name !== null && names.length < most) names.push(name);
+    });
+  return names;
+};
+
 /** Reads payloads, one after the other. */
 export class PayloadReader {
   readonly #fields = new WireReader();

@@ -57,6 +57,8 @@ class Node {
   seq = -1;
   timeMs = Number.NaN;
   birthNumber = -1;
+  /** Births taken over from before a restart hold unless the first message after it is later than this. */
+  trustedUntilMs = Number.POSITIVE_INFINITY;
 
   member(device: string | null): Member | undefined {
     return device === null ? this.self : this.devices.get(device);
@@ -128,17 +130,24 @@ export class SparkplugSessions {
     }));
   }
 
-  /** Goes on from births heard before; of nodes and devices still asked for. */
-  restore(saved: readonly SavedNode[]): void {
+  /**
+   * Goes on from births heard before; of nodes and devices still asked for.
+   *
+   * untilMs  a first message of a node later than this finds them forgotten: too much may have passed unheard
+   */
+  restore(saved: readonly SavedNode[], untilMs = Number.POSITIVE_INFINITY): void {
     for (const { name, birthNumber, members } of saved) {
       const node = this.#nodes.get(name);
       if (node === undefined) continue;
       node.birthNumber = birthNumber;
+      node.trustedUntilMs = untilMs;
       for (const [device, member] of members) node.member(device)?.restore(member);
     }
   }
 
   #live(node: Node, topic: SparkplugTopic, reader: PayloadReader, target: ReadingTarget): void {
+    if (reader.timeMs > node.trustedUntilMs) for (const [, member] of node.members) member.forget('unheard');
+    node.trustedUntilMs = Number.POSITIVE_INFINITY;
     if (topic.type === 'NDEATH') {
       this.#nodeDeath(node, reader);
       return;

@@ -1,6 +1,6 @@
 import fc from 'fast-check';
 import { describe, expect, test } from 'vitest';
-import { checkTopicName, matchesFilter, parseTopic, topicsOf } from '../../protocol/topics.ts';
+import { checkTopicName, coversFilter, matchesFilter, parseTopic, topicsOf } from '../../protocol/topics.ts';
 
 describe('topics of a site', () => {
   test('every topic is built, is a valid name, and is taken apart again', () => {
@@ -44,6 +44,25 @@ describe('topics of a site', () => {
     expect(matchesFilter(topicsOf('stillwell', '+').segments, 'stillwell/mill-lane/segments')).toBe(true);
     expect(matchesFilter(topicsOf('stillwell', '+').segments, 'stillwell/mill-lane/state')).toBe(false);
     expect(matchesFilter(topicsOf('stillwell', 'a').forecast('+'), 'stillwell/a/forecast/flow')).toBe(true);
+  });
+
+  test('a filter covers another where every topic under that one is under it', () => {
+    const levels = ['a', 'b', '+', '$s'];
+    const names = ['a', 'b', '', '$s'];
+    const product = (parts: readonly string[], depth: number): string[] =>
+      depth === 0
+        ? []
+        : [...parts, ...parts.flatMap((one) => product(parts, depth - 1).map((rest) => `${one}/${rest}`))];
+    const filters = [...product(levels, 2), ...product(levels, 2).map((one) => `${one}/#`), '#'];
+    const topics = product(names, 3);
+    let covered = 0;
+    for (const wide of filters)
+      for (const narrow of filters) {
+        const isCovered = topics.every((topic) => !matchesFilter(narrow, topic) || matchesFilter(wide, topic));
+        if (isCovered) covered++;
+        expect([wide, narrow, coversFilter(wide, narrow)]).toEqual([wide, narrow, isCovered]);
+      }
+    expect(covered).toBeGreaterThan(filters.length * 2);
   });
 
   test('matching agrees with a slow oracle that expands the filter into a regular expression', () => {
