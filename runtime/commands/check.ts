@@ -1,43 +1,43 @@
-/** `stillwell-gateway check`: everything a start needs, tried in order, and a few seconds of listening to the plant. */
-import { type Site, toHex, topicsOf } from '@stillwell/protocol';
+/** `stillwell-gateway check`: everything a start needs, tried in order, and a while of listening to the plant. */
+import { checkTopicFilter, toHex, topicsOf } from '@stillwell/protocol';
 import { Command } from 'commander';
 import { checkNamed } from '../bundle/load.ts';
-import { type BrokerConfig, type RawOptions, readConfig, readGiven } from '../config.ts';
+import { type GatewayConfig, type RawOptions, readConfig, readGiven } from '../config.ts';
 import { nodeDisk } from '../disk.ts';
 import { RuntimeError } from '../errors.ts';
-import { ReadingDecoder } from '../ingest/decode.ts';
-import { refusedBecause } from '../ingest/quality.ts';
-import { openConnection, shownBroker } from '../mqtt/connection.ts';
-import { brokerOptions, siteOptions } from './options.ts';
+import { HeardSite } from '../ingest/heard.ts';
+import { type Connection, openConnection, shownBroker } from '../mqtt/connection.ts';
+import { heardData, heardLines } from './heard-text.ts';
+import { brokerOptions, gather, siteOptions } from './options.ts';
 
 interface CheckOptions extends Omit<RawOptions, 'data'> {
   readonly bundle?: string;
   readonly seconds: string;
+  readonly around: readonly string[];
   readonly json?: boolean;
 }
 
-interface Heard {
-  readonly name: string;
-  readonly topic: string | null;
-  count: number;
-  last: number | null;
-  refused: string | null;
-}
-
 const CONNECT_MS = 10_000;
+const REDRAW_MS = 500;
 
 /** Builds the command. */
 export function checkCommand(): Command {
   const command = new Command('check').description(
-    'Checks site file, keys, bundle and broker, then listens and says which signals were heard. Changes nothing.',
+    'Checks site file, keys, bundle and broker, then listens and says signal by signal what came, what was refused and why, and what came that no signal takes. Changes nothing.',
   );
   return brokerOptions(siteOptions(command))
     .option('--bundle <file>', 'sealed bundle to check as well')
-    .option('--seconds <n>', 'how long to listen', '5')
+    .option('--seconds <n>', 'how long to listen', '10')
+    .option(
+      '--around <filter>',
+      'listen to this topic filter too, to find what silent signals are called; may be repeated',
+      gather,
+      [],
+    )
     .option('--json', 'one JSON object')
     .addHelpText(
       'after',
-      '\nExample:\n  stillwell-gateway check --site site.yaml --trust author.pub --broker mqtt://localhost:1883 --bundle first.swb',
+      '\nExample:\n  stillwell-gateway check --site site.yaml --trust author.pub --broker mqtt://localhost:1883 --around "plant/#"',
     )
     .action(check);
 }
@@ -46,6 +46,7 @@ async function check(options: CheckOptions): Promise<void> {
   const seconds = /^\d+$/.test(options.seconds) ? Number(options.seconds) : Number.NaN;
   if (!(seconds >= 0 && seconds <= 3600))
     throw new RuntimeError('options', `--seconds: expected a whole number from 0 to 3600, got "${options.seconds}"`);
+  for (const filter of options.around) checkAround(filter);
   const config = readConfig(nodeDisk, { ...options, data: '' });
   const { site } = config;
   const say = (text: string): void => {
@@ -57,60 +58,96 @@ async function check(options: CheckOptions): Promise<void> {
   say(`trust     ${config.trusted.length} author key${config.trusted.length === 1 ? '' : 's'}`);
   const bundle = options.bundle === undefined ? null : bundleSummary(options.bundle, config);
   if (bundle !== null) say(`bundle    ${bundle.digest.slice(0, 16)}…, sequence ${bundle.sequence}: every check passed`);
-  const { protocol, heard } = await listen(config.broker, site, seconds, say);
-  for (const one of heard) say(heardText(one, seconds));
-  if (options.json) process.stdout.write(`${JSON.stringify({ site: site.site, bundle, protocol, seconds, heard })}\n`);
+  const heard = new HeardSite(site);
+  const screen = process.stdout.isTTY && !options.json ? new Screen() : null;
+  const found = await listen(config, heard, options.around, seconds, say, screen);
+  const data = { site: site.site, bundle, protocol: found.protocol, seconds, ...heardData(heard, seconds, Date.now()) };
+  if (options.json) process.stdout.write(`${JSON.stringify({ ...data, refused_filters: found.refusedFilters })}\n`);
 }
 
-function bundleSummary(path: string, config: ReturnType<typeof readConfig>): { digest: string; sequence: number } {
+function checkAround(filter: string): void {
+  try {
+    checkTopicFilter(filter);
+  } catch (error) {
+    throw new RuntimeError('options', `--around: ${(error as Error).message}`);
+  }
+}
+
+function bundleSummary(path: string, config: GatewayConfig): { digest: string; sequence: number } {
   const sealed = readGiven(nodeDisk, path, 'bundle');
   const { digest, sequence } = checkNamed(path, sealed, config.site, config.trusted);
   return { digest: toHex(digest), sequence };
 }
 
 async function listen(
-  broker: BrokerConfig,
-  site: Site,
+  { broker, site }: GatewayConfig,
+  heard: HeardSite,
+  around: readonly string[],
   seconds: number,
   say: (text: string) => void,
-): Promise<{ protocol: string; heard: Heard[] }> {
-  const channels = [...site.signals, ...site.inputs];
-  const heard: Heard[] = channels.map(({ name, topic }) => ({ name, topic, count: 0, last: null, refused: null }));
-  const decoder = new ReadingDecoder(site);
-  const take = (channel: number, value: number): void => {
-    const one = heard[channel]!;
-    one.count++;
-    one.last = value;
-    one.refused = refusedBecause(value, channels[channel]!.range) ?? one.refused;
-  };
+  screen: Screen | null,
+): Promise<{ protocol: string; refusedFilters: readonly string[] }> {
   const connection = openConnection({
     ...broker,
     clientId: `stillwell-check-${site.site}-${process.pid}`,
-    onMessage: (topic, payload) => {
-      decoder.decode(topic, payload, {
-        take,
-        refuse: (channel, reason) => {
-          heard[channel]!.refused = reason;
-        },
-      });
-    },
+    onMessage: (topic, payload, { retain }) => heard.message(topic, payload, retain, Date.now()),
   });
   try {
     await connection.firstConnect(CONNECT_MS);
     const protocol = connection.protocol === 5 ? '5' : '3.1.1';
     say(`broker    ${shownBroker(broker.url)}: connected, MQTT ${protocol}`);
-    await connection.subscribe([...decoder.filters, topicsOf(site.root, site.site).bundle], 1, CONNECT_MS);
+    const refusedFilters = await subscribe(connection, heard, [topicsOf(site.root, site.site).bundle], around);
+    for (const filter of refusedFilters) say(`broker    lets us not subscribe ${filter}`);
+    say(`listening for ${seconds} s`);
+    const began = Date.now();
+    const lines = (): readonly string[] => heardLines(heard, (Date.now() - began) / 1000, Date.now());
+    const redraw = screen === null ? null : setInterval(() => screen.draw(lines()), REDRAW_MS);
     await new Promise((resolve) => setTimeout(resolve, seconds * 1000));
-    return { protocol, heard };
+    if (redraw !== null) clearInterval(redraw);
+    if (screen !== null) screen.clear();
+    for (const line of heardLines(heard, seconds, Date.now())) say(line);
+    return { protocol, refusedFilters };
   } finally {
     await connection.end();
   }
 }
 
-function heardText(one: Heard, seconds: number): string {
-  const name = one.name.padEnd(20);
-  if (one.topic === null) return `silent    ${name} has no topic in the site file`;
-  if (one.refused !== null) return `refused   ${name} ${one.topic}: ${one.refused}`;
-  if (one.count === 0) return `not heard ${name} ${one.topic}: nothing within ${seconds} s`;
-  return `heard     ${name} ${one.topic}: ${one.count} readings, last ${one.last}`;
+/** What the site needs must be granted; what only helps may be refused: births a broker may keep, and what is around. */
+async function subscribe(
+  connection: Connection,
+  heard: HeardSite,
+  own: readonly string[],
+  around: readonly string[],
+): Promise<readonly string[]> {
+  const wanted = [...heard.planKeeper.filters, ...heard.decoder.filters];
+  const isHelp = (filter: string): boolean => filter.startsWith('$');
+  await connection.subscribe([...own, ...wanted.filter((filter) => !isHelp(filter))], 1, CONNECT_MS);
+  const refused: string[] = [];
+  for (const filter of [...wanted.filter(isHelp), ...around]) {
+    try {
+      await connection.subscribe([filter], 0, CONNECT_MS);
+    } catch (error) {
+      if (!(error instanceof RuntimeError) || error.code !== 'broker') throw error;
+      refused.push(filter);
+    }
+  }
+  return refused;
+}
+
+/** Redraws lines in place on a terminal. */
+class Screen {
+  #height = 0;
+
+  draw(lines: readonly string[]): void {
+    const { columns, rows } = process.stdout;
+    const shown = lines.slice(0, Math.max(1, rows - 1)).map((line) => line.slice(0, columns));
+    this.clear();
+    process.stdout.write(`${shown.join('\n')}\n`);
+    this.#height = shown.length;
+  }
+
+  clear(): void {
+    if (this.#height > 0) process.stdout.write(`\x1b[${this.#height}A\x1b[J`);
+    this.#height = 0;
+  }
 }

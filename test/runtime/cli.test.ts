@@ -134,12 +134,20 @@ test('check says which signals were heard', async () => {
   for (const { topic, payload } of plantMessages(1, 3, 0)[0]!.slice(0, 1))
     await plant.publish({ topic, payload, qos: 1, retain: true });
   await plant.publish({ topic: 'plant/flow', payload: 'wet', qos: 1, retain: true });
+  await plant.publish({ topic: 'plant/pmup', payload: '1', qos: 1, retain: true });
   const { code, out } = await run('check', ...site(), ...url(), '--bundle', at('first.swb'), '--seconds', '1');
+  const around = await run('check', ...site(), ...url(), '--seconds', '1', '--around', 'plant/#', '--json');
   await plant.end();
   expect(out).toMatch(/^bundle {4}[0-9a-f]{16}…, sequence 1: every check passed$/m);
-  expect(out).toMatch(/^heard {5}level +plant\/level: 1 readings, last -?\d/m);
-  expect(out).toMatch(/^refused {3}flow +plant\/flow: syntax$/m);
-  expect(out).toMatch(/^not heard pump +plant\/pump: nothing within 1 s$/m);
+  expect(out).toMatch(
+    /^level +1, 1\/s +-?\d[\d.]* \S+ +\d.* (?:ago|ahead), own time, kept by the broker +plant\/level$/m,
+  );
+  expect(out).toMatch(/^flow +- +- +- +plant\/flow\n {2}refused 1 × syntax: payload: expected JSON text, got "wet"$/m);
+  expect(out).toMatch(/^pump +- +- +- +plant\/pump$/m);
+  const { heard, unmatched, refused_filters: refused } = JSON.parse(around.out) as Record<string, { hint?: string }[]>;
+  expect(heard!.map(({ hint }) => hint)).toEqual([null, null, 'did you mean plant/pmup?']);
+  expect(unmatched).toEqual([{ topic: 'plant/pmup', count: 1, example: '1' }]);
+  expect(refused).toEqual([]);
   expect(code).toBe(0);
 });
 
