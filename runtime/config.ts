@@ -15,6 +15,7 @@ import {
   type TrustedKeys,
   toName,
 } from '@stillwell/protocol';
+import { dataFolderOf } from './data-folders.ts';
 import type { Disk } from './disk.ts';
 import { RuntimeError } from './errors.ts';
 import { parseBrokerUrl, type TlsOptions } from './mqtt/stream.ts';
@@ -64,6 +65,11 @@ export interface RawOptions {
   readonly key?: string;
 }
 
+/** The same for several sites, each with a data folder of its own. */
+export interface RawSitesOptions extends Omit<RawOptions, 'site'> {
+  readonly site: readonly string[];
+}
+
 const DEFAULT_SPOOL_MIB = 32;
 const DEFAULT_HEALTH_SECONDS = 60;
 const HOUR_MS = 3_600_000;
@@ -85,6 +91,32 @@ export function readConfig(disk: Disk, raw: RawOptions): GatewayConfig {
     spoolBytes: whole('--spool-mib', raw.spoolMib, DEFAULT_SPOOL_MIB, 1, 65_536) * 1024 * 1024,
     healthSeconds: whole('--health-seconds', raw.healthSeconds, DEFAULT_HEALTH_SECONDS, 1, 86_400),
   };
+}
+
+/** As readConfig, for every site. throws  RuntimeError 'options' where two files name the same site */
+export function readConfigs(disk: Disk, raw: RawSitesOptions): readonly GatewayConfig[] {
+  const configs = raw.site.map((site) => readConfig(disk, { ...raw, site }));
+  checkSites(
+    configs.map(({ site }) => site),
+    raw.site,
+  );
+  return configs.map((config) => ({
+    ...config,
+    data: dataFolderOf(disk, raw.data, config.site.site, configs.length),
+  }));
+}
+
+/** throws  RuntimeError 'options' where there is no site file, or two name the same site */
+export function checkSites(sites: readonly Site[], paths: readonly string[]): void {
+  if (sites.length === 0) throw new RuntimeError('options', '--site: expected at least one site file, got none');
+  sites.forEach(({ root, site }, i) => {
+    const first = sites.findIndex((one) => one.site === site && one.root === root);
+    if (first < i)
+      throw new RuntimeError(
+        'options',
+        `--site: ${paths[first]} and ${paths[i]} both are of site "${site}"; give each site once, or name one of them otherwise`,
+      );
+  });
 }
 
 /** An hour's worth, but at least 60 so that head and coder start-up are spread, and at most 3600. */

@@ -107,6 +107,10 @@ export class Gateway {
     return this.#status;
   }
 
+  get config(): GatewayConfig {
+    return this.#config;
+  }
+
   get isConnected(): boolean {
     return this.#connection.isConnected;
   }
@@ -149,7 +153,7 @@ export class Gateway {
       will: Publisher.will(this.#config, this.#ports, this.#topics.health),
       ...(firstRetryMs === undefined ? {} : { backOff: { firstMs: firstRetryMs } }),
       onMessage: (topic, payload, packet) => this.#take(topic, payload, packet),
-      onState: (event) => this.#onConnection(event),
+      onState: (event) => this.#guard(() => this.#onConnection(event)),
     });
   }
 
@@ -260,7 +264,7 @@ export class Gateway {
     this.#tend(isRetry);
     this.#shipper.poke();
     if (this.#publisher.isHealthDue()) this.#sayHealth();
-    this.#cancelPulse = clock.after(this.#untilNextMs(), () => this.#pulse());
+    this.#cancelPulse = clock.after(this.#untilNextMs(), () => this.#guard(() => this.#pulse()));
   }
 
   #untilNextMs(): number {
@@ -288,7 +292,7 @@ export class Gateway {
   #publishSoon(): void {
     if (this.#isPublishDue) return;
     this.#isPublishDue = true;
-    setImmediate(() => this.#publishTick());
+    setImmediate(() => this.#guard(() => this.#publishTick()));
   }
 
   #publishTick(): void {
@@ -338,7 +342,22 @@ export class Gateway {
   }
 
   #sayHealth(): void {
-    if (!this.#isStopping) void this.#publisher.health(this.#report());
+    if (!this.#isStopping) this.#publisher.health(this.#report()).catch((error) => this.#fault(error));
+  }
+
+  /** Where nobody would catch what is thrown: several gateways in one process must not fall with one. */
+  #guard(work: () => void): void {
+    try {
+      work();
+    } catch (error) {
+      this.#fault(error);
+    }
+  }
+
+  #fault(error: unknown): void {
+    const { onFault } = this.#ports;
+    if (onFault === undefined) throw error;
+    onFault(error);
   }
 
   #report(): Parameters<Publisher['health']>[0] {

@@ -32,6 +32,16 @@ export function createLog(level: string): Log {
   };
 }
 
+/** The same log for one of several: its lines begin with a name. */
+export function prefixed(log: Log, name: string): Log {
+  return {
+    debug: (text) => log.debug(`${name}: ${text}`),
+    info: (text) => log.info(`${name}: ${text}`),
+    warn: (text) => log.warn(`${name}: ${text}`),
+    error: (text) => log.error(`${name}: ${text}`),
+  };
+}
+
 function writePlain(line: string): void {
   const { time, level, msg } = JSON.parse(line) as { time: string; level: string; msg: string };
   process.stdout.write(`${time.slice(11, 23)} ${level.padEnd(5)} ${msg}\n`);

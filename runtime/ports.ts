@@ -10,6 +10,8 @@ export interface GatewayPorts {
   readonly log: Log;
   /** 8 bytes for a fresh data folder; random unless given. */
   readonly stream?: Uint8Array;
+  /** Told of what fails where nobody waits for it; the gateway then does nothing more. Absent: it is thrown. */
+  readonly onFault?: (error: unknown) => void;
   /** Largest first wait before reconnecting, ms; default as in the connection. */
   readonly firstRetryMs?: number;
   /** How long an MQTT 5 broker waits before it publishes the will; default 10, so that a short cut is no loss. */

@@ -80,6 +80,27 @@ export function checkNamed(path: string, sealed: Uint8Array, site: Site, trusted
   throw new RuntimeError('bundle', `${path}: refused (${verdict.code}): ${verdict.reason}`);
 }
 
+/**
+ * Which of several sites a bundle file is for: the place in the list.
+ *
+ * throws  RuntimeError 'bundle' where it is for none of them
+ */
+export function siteOfBundle(
+  path: string,
+  sealed: Uint8Array,
+  places: readonly { readonly site: Site; readonly trusted: TrustedKeys }[],
+): number {
+  const verdicts = places.map(({ site, trusted }) =>
+    checkBundle(sealed, { site, trusted, highWater: [], isOwn: false }),
+  );
+  // Whatever else may be wrong with it is said when it is checked for that site.
+  const at = verdicts.findIndex((verdict) => verdict.ok || verdict.code !== 'site');
+  if (at >= 0 || places.length === 1) return Math.max(0, at);
+  const names = places.map(({ site }) => site.site).join(', ');
+  const why = verdicts.map((verdict) => (verdict.ok ? '' : verdict.reason))[0]!.split(',')[0];
+  throw new RuntimeError('bundle', `${path}: ${why}; expected one for ${names}`);
+}
+
 function refuse(code: RefusalCode, reason: string): { ok: false; code: RefusalCode; reason: string } {
   return { ok: false, code, reason };
 }

@@ -3,15 +3,16 @@ import { toHex } from '@stillwell/protocol';
 import { Command } from 'commander';
 import { BundleKeeper } from '../bundle/change.ts';
 import { incomingPath } from '../bundle/intake.ts';
-import { checkNamed } from '../bundle/load.ts';
-import { makeDataFolder, readGiven, readSite, readTrust } from '../config.ts';
+import { checkNamed, siteOfBundle } from '../bundle/load.ts';
+import { checkSites, makeDataFolder, readGiven, readSite, readTrust } from '../config.ts';
+import { dataFolderOf } from '../data-folders.ts';
 import { nodeDisk, replaceOn } from '../disk.ts';
 import { RuntimeError } from '../errors.ts';
 import { lockHolder, takeLock } from '../lock.ts';
-import { siteOptions } from './options.ts';
+import { sitesOptions } from './options.ts';
 
 interface LoadOptions {
-  readonly site: string;
+  readonly site: readonly string[];
   readonly trust: readonly string[];
   readonly data: string;
 }
@@ -24,9 +25,9 @@ export function loadCommand(): Command {
   const command = new Command('load').description(
     'Checks a sealed bundle and hands it to the gateway of a data folder; a running gateway changes to it at the next tick.',
   );
-  return siteOptions(command)
+  return sitesOptions(command)
     .argument('<bundle>', 'sealed bundle file')
-    .requiredOption('--data <folder>', 'data folder of the gateway')
+    .requiredOption('--data <folder>', 'data folder of the gateway, as given to run')
     .addHelpText(
       'after',
       '\nExample:\n  stillwell-gateway load new.swb --site site.yaml --data /var/lib/stillwell --trust author.pub',
@@ -35,15 +36,19 @@ export function loadCommand(): Command {
 }
 
 async function load(file: string, options: LoadOptions): Promise<void> {
-  const site = readSite(nodeDisk, options.site);
+  const sites = options.site.map((path) => readSite(nodeDisk, path));
+  checkSites(sites, options.site);
   const trusted = readTrust(nodeDisk, options.trust);
   const sealed = readGiven(nodeDisk, file, 'bundle');
+  const places = sites.map((site) => ({ site, trusted }));
+  const { site } = places[siteOfBundle(file, sealed, places)]!;
   checkNamed(file, sealed, site, trusted);
-  makeDataFolder(nodeDisk, options.data);
-  const holder = lockHolder(options.data);
-  const unlock = holder === null ? takeLock(options.data) : null;
+  const data = dataFolderOf(nodeDisk, options.data, site.site, sites.length);
+  makeDataFolder(nodeDisk, data);
+  const holder = lockHolder(data);
+  const unlock = holder === null ? takeLock(data) : null;
   try {
-    const keeper = new BundleKeeper(nodeDisk, options.data, site, trusted);
+    const keeper = new BundleKeeper(nodeDisk, data, site, trusted);
     const verdict = keeper.judge(sealed);
     if (verdict.outcome === 'refused')
       throw new RuntimeError('bundle', `${file}: refused (${verdict.code}): ${verdict.reason}`);
@@ -59,8 +64,8 @@ async function load(file: string, options: LoadOptions): Promise<void> {
       process.stdout.write(`${file}: stored (${name}); the gateway changes to it when it starts\n`);
       return;
     }
-    replaceOn(nodeDisk, incomingPath(options.data), sealed);
-    if (!(await isTaken(options.data)))
+    replaceOn(nodeDisk, incomingPath(data), sealed);
+    if (!(await isTaken(data)))
       throw new RuntimeError('data-folder', `${file}: handed over, but process ${holder} has not taken it within 10 s`);
     process.stdout.write(`${file}: taken by the running gateway (${name}); see its status\n`);
   } finally {

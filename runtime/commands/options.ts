@@ -18,6 +18,13 @@ export function brokerOptions(command: Command): Command {
     .option('--key <file>', 'PEM key of this client');
 }
 
+/** Which sites, and whose bundles are believed. */
+export function sitesOptions(command: Command): Command {
+  return command
+    .option('--site <file>', 'site file; may be repeated, for several sites in one process', gather, [])
+    .option('--trust <file>', 'public author key whose bundles are believed; may be repeated', gather, []);
+}
+
 /** Which site, and whose bundles are believed. */
 export function siteOptions(command: Command): Command {
   return command

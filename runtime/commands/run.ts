@@ -1,31 +1,39 @@
 /** `stillwell-gateway run`: the gateway itself, until it is told to stop. */
 import { Command } from 'commander';
-import { checkNamed } from '../bundle/load.ts';
+import { checkNamed, siteOfBundle } from '../bundle/load.ts';
 import { holdsBundle } from '../bundle/slots.ts';
 import { systemClock } from '../clock.ts';
-import { makeDataFolder, type RawOptions, readConfig, readGiven } from '../config.ts';
+import { makeDataFolder, type RawSitesOptions, readConfigs, readGiven } from '../config.ts';
 import { nodeDisk } from '../disk.ts';
 import { RuntimeError } from '../errors.ts';
-import { Gateway } from '../gateway.ts';
-import { takeLock } from '../lock.ts';
+import type { Gateway } from '../gateway.ts';
 import { createLog } from '../log.ts';
 import { keepHeapSmall } from '../memory.ts';
 import { shownBroker } from '../mqtt/connection.ts';
-import { brokerOptions, siteOptions } from './options.ts';
+import { type FirstBundle, Several, type SiteJob } from '../several.ts';
+import { brokerOptions, gather, sitesOptions } from './options.ts';
 
-interface RunOptions extends RawOptions {
-  readonly bundle?: string;
+interface RunOptions extends RawSitesOptions {
+  readonly bundle: readonly string[];
   readonly log: string;
 }
 
 /** Builds the command. */
 export function runCommand(): Command {
   const command = new Command('run').description(
-    'Subscribes to the site, filters, forecasts and keeps the record; takes bundles from the broker or from a file.',
+    'Subscribes to a site or several, filters, forecasts and keeps the record; takes bundles from the broker or from a file.',
   );
-  return brokerOptions(siteOptions(command))
-    .requiredOption('--data <folder>', 'data folder of this gateway, made if absent')
-    .option('--bundle <file>', 'sealed bundle to put to work first, if it is newer than what serves')
+  return brokerOptions(sitesOptions(command))
+    .requiredOption(
+      '--data <folder>',
+      'data folder of this gateway, made if absent; of several sites each has one of its name in it',
+    )
+    .option(
+      '--bundle <file>',
+      'sealed bundle to put to work first, if it is newer than what serves; may be repeated',
+      gather,
+      [],
+    )
     .option('--gateway <name>', 'name of this gateway (default: the host name)')
     .option('--clock <kind>', 'wall: ticks close by the clock; readings: by the readings alone, for replays', 'wall')
     .option('--segment-ticks <n>', 'ticks in a segment (default: an hour of them, 60 to 3600)')
@@ -45,35 +53,50 @@ export function runCommand(): Command {
 
 async function run(options: RunOptions): Promise<void> {
   const log = createLog(options.log);
-  const config = readConfig(nodeDisk, options);
-  const first = options.bundle === undefined ? null : readGiven(nodeDisk, options.bundle, 'bundle');
-  // Where nothing else can serve, a bundle that will not do ends the start before there is anything to clear away.
-  if (first !== null && !holdsBundle(nodeDisk, config.data))
-    checkNamed(options.bundle!, first, config.site, config.trusted);
-  makeDataFolder(nodeDisk, config.data);
-  const unlock = takeLock(config.data);
-  let gateway: Gateway | null = null;
+  const jobs = jobsOf(options);
+  for (const { config } of jobs) makeDataFolder(nodeDisk, config.data);
+  const several = new Several(jobs, {
+    ports: { clock: systemClock, disk: nodeDisk, log },
+    onGateway: (gateway) => log.info(startedText(gateway)),
+    offer: offerFirst,
+  });
   try {
-    gateway = new Gateway(config, { clock: systemClock, disk: nodeDisk, log });
-    log.info(
-      `gateway ${config.gateway} of site ${config.site.site}: ${config.site.signals.length} signals, broker ${shownBroker(config.broker.url)}`,
-    );
-    if (first !== null) offerFirst(gateway, first, options.bundle!);
-    if (gateway.engine.serving === null) log.info('no bundle yet: waiting for one from the broker or from `load`');
+    for (const { engine } of several.gateways) {
+      const name = jobs.length === 1 ? '' : `${engine.site.site}: `;
+      if (engine.serving === null)
+        log.info(`${name}no bundle yet: recording, and waiting for one from the broker or from \`load\``);
+    }
     await untilToldToStop();
     log.info('stopping');
-    await gateway.stop();
+    await several.stop();
     log.info('stopped');
   } catch (error) {
-    await gateway?.abandon();
+    await several.abandon();
     throw error;
-  } finally {
-    unlock();
   }
 }
 
+/** Everything that a start needs, checked before anything is made or changed. */
+function jobsOf(options: RunOptions): readonly SiteJob[] {
+  const configs = readConfigs(nodeDisk, options);
+  const bundles = configs.map((): FirstBundle[] => []);
+  for (const path of options.bundle) {
+    const sealed = readGiven(nodeDisk, path, 'bundle');
+    const at = siteOfBundle(path, sealed, configs);
+    bundles[at]!.push({ path, sealed });
+    const { data, site, trusted } = configs[at]!;
+    // Where nothing else can serve, a bundle that will not do ends the start before there is anything to clear away.
+    if (!holdsBundle(nodeDisk, data)) checkNamed(path, sealed, site, trusted);
+  }
+  return configs.map((config, i) => ({ config, bundles: bundles[i]! }));
+}
+
+function startedText({ config: { gateway, site, broker } }: Gateway): string {
+  return `gateway ${gateway} of site ${site.site}: ${site.signals.length} signals, broker ${shownBroker(broker.url)}`;
+}
+
 /** A bundle named on the command line must be good where nothing else serves; an old one beside a serving one is only said. */
-function offerFirst(gateway: Gateway, sealed: Uint8Array, path: string): void {
+function offerFirst(gateway: Gateway, { sealed, path }: FirstBundle): void {
   const outcome = gateway.offerBundle(sealed, path);
   if (gateway.engine.serving === null) throw new RuntimeError('bundle', outcome);
 }

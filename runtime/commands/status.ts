@@ -1,6 +1,7 @@
 /** `stillwell-gateway status`: what a gateway said of itself last, without a broker. */
 import type { HealthMessage } from '@stillwell/protocol';
 import { Command } from 'commander';
+import { usedFolders } from '../data-folders.ts';
 import { nodeDisk } from '../disk.ts';
 import { lockHolder } from '../lock.ts';
 import { readStatus } from '../status.ts';
@@ -8,15 +9,18 @@ import { readStatus } from '../status.ts';
 /** Builds the command. */
 export function statusCommand(): Command {
   return new Command('status')
-    .description('Prints what the gateway of a data folder said of itself last, and whether it runs now.')
-    .requiredOption('--data <folder>', 'data folder of the gateway')
-    .option('--json', 'one JSON object')
+    .description('Prints what the gateways of a data folder said of themselves last, and whether they run now.')
+    .requiredOption('--data <folder>', 'data folder of the gateway, or of several')
+    .option('--json', 'one JSON object, of several sites one a line')
     .addHelpText('after', '\nExample:\n  stillwell-gateway status --data /var/lib/stillwell')
     .action((options: { data: string; json?: boolean }) => {
-      const health = readStatus(nodeDisk, options.data);
-      const pid = lockHolder(options.data);
-      if (options.json) process.stdout.write(`${JSON.stringify({ running: pid !== null, pid, health })}\n`);
-      else process.stdout.write(statusText(health, pid));
+      const folders = usedFolders(nodeDisk, options.data);
+      const texts = (folders.length === 0 ? [options.data] : folders).map((folder) => {
+        const health = readStatus(nodeDisk, folder);
+        const pid = lockHolder(folder);
+        return options.json ? `${JSON.stringify({ running: pid !== null, pid, health })}\n` : statusText(health, pid);
+      });
+      process.stdout.write(texts.join(options.json ? '' : '\n'));
     });
 }
 
