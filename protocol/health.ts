@@ -4,7 +4,16 @@
  */
 import { z } from 'zod';
 import { formatInstant } from './instant.ts';
-import { headFields, instantSchema, type MessageHead, readJson, writeHead, writeJson } from './message.ts';
+import {
+  headFields,
+  instantSchema,
+  type MessageHead,
+  nameSchema,
+  qualitySchema,
+  readJson,
+  writeHead,
+  writeJson,
+} from './message.ts';
 
 /** What a gateway is doing; 'lost' is said by the broker in its name. */
 export const HEALTH_STATUSES = ['starting', 'no-bundle', 'warming', 'running', 'stopped', 'lost'] as const;
@@ -36,12 +45,55 @@ export const lastChangeSchema = z.strictObject({
   reason: z.string().min(1).nullable(),
 });
 
+/** What may be the matter with a signal. */
+export const SIGNAL_WORDS = [
+  'out-of-range',
+  'stuck',
+  'absent',
+  'disagreeing',
+  'implausible',
+  'noisy',
+  'jumping',
+  'drifting',
+] as const;
+/** One of them. */
+export type SignalWord = (typeof SIGNAL_WORDS)[number];
+
+/** One signal; of a good one the age of its last reading alone is said. */
+export const signalHealthSchema = z.strictObject({
+  signal: nameSchema,
+  /** Seconds; null before the first reading. */
+  last_reading_s: z.number().min(0).nullable(),
+  quality: qualitySchema.optional(),
+  reason: z.string().min(1).optional(),
+  words: z.array(z.enum(SIGNAL_WORDS)).min(1).optional(),
+  refused: count.optional(),
+  passed_over: count.optional(),
+});
+/** As it stands in JSON. */
+export type SignalHealth = z.output<typeof signalHealthSchema>;
+
+/** What a gateway does, rising, about a filter whose forecasts leave all bounds, or that fails. */
+export const DIVERGENCE_STEPS = ['passing-over', 'widened', 'reset', 'previous-bundle', 'holding'] as const;
+/** One of them. */
+export type DivergenceStep = (typeof DIVERGENCE_STEPS)[number];
+
+/** What is done about such a filter at present. */
+export const divergenceSchema = z.strictObject({
+  step: z.enum(DIVERGENCE_STEPS),
+  /** End of the tick at which that step was taken. */
+  since: instantSchema,
+  reason: z.string().min(1),
+});
+
 /** Every field of a health message. */
 export const healthSchema = z.strictObject({
   ...headFields('health'),
   status: z.enum(HEALTH_STATUSES),
   counters: countersSchema,
   last_change: lastChangeSchema.nullable(),
+  signals: z.array(signalHealthSchema).optional(),
+  divergence: divergenceSchema.optional(),
   versions: z.record(z.string().min(1), z.string()),
 });
 
@@ -75,6 +127,10 @@ export interface HealthFacts extends MessageHead {
   readonly status: HealthStatus;
   readonly counters: HealthCounters;
   readonly lastChange: BundleChange | null;
+  /** In the site's order; absent where no bundle serves. */
+  readonly signals?: readonly SignalHealth[];
+  /** Absent: nothing need be done. */
+  readonly divergence?: { readonly step: DivergenceStep; readonly sinceMs: number; readonly reason: string };
   /** Of the program, its formats and the machine's runtime. */
   readonly versions: Readonly<Record<string, string>>;
 }
@@ -86,7 +142,7 @@ export interface HealthFacts extends MessageHead {
  * throws  ProtocolError 'encode' on a number that is not finite
  */
 export const healthMessage = (facts: HealthFacts): Uint8Array => {
-  const change = facts.lastChange;
+  const { lastChange: change, signals, divergence } = facts;
   const message: HealthMessage = {
     ...writeHead('health', facts),
     status: facts.status,
@@ -101,6 +157,16 @@ export const healthMessage = (facts: HealthFacts): Uint8Array => {
             outcome: change.outcome,
             reason: change.reason,
           },
+    ...(signals === undefined ? {} : { signals: [...signals] }),
+    ...(divergence === undefined
+      ? {}
+      : {
+          divergence: {
+            step: divergence.step,
+            since: formatInstant(divergence.sinceMs),
+            reason: divergence.reason,
+          },
+        }),
     versions: { ...facts.versions },
   };
   return writeJson(message);

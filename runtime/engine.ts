@@ -5,7 +5,7 @@
  */
 import { type ReadingTarget, type Site, wrapOf } from '@stillwell/protocol';
 import type { BundleKeeper } from './bundle/change.ts';
-import { Counters } from './health.ts';
+import { Counters, type RefusedCause } from './health.ts';
 import { Aligner, type LateChange } from './ingest/align.ts';
 import { BirthFile } from './ingest/births.ts';
 import { ReadingDecoder } from './ingest/decode.ts';
@@ -20,6 +20,7 @@ import { openRecord, type RecordOptions, type RecordStart } from './residuals/re
 import { Spool } from './residuals/spool.ts';
 import { eachReading, type WalRecord } from './residuals/wal.ts';
 import { type CheckedBundle, Serving } from './serving.ts';
+import { SignalWatch } from './signals/watch.ts';
 
 /** What an engine is made of. */
 export interface EngineOptions extends RecordOptions {
@@ -38,6 +39,7 @@ export class Engine {
   readonly counters = new Counters();
   readonly decoder: ReadingDecoder;
   readonly plans: PlanKeeper;
+  readonly watch: SignalWatch;
   readonly aligner: Aligner;
   readonly spool: Spool;
   readonly identity: Identity;
@@ -51,7 +53,7 @@ export class Engine {
   #notAfterMs: number | null = null;
   readonly #target: ReadingTarget = {
     take: (channel, value, timeMs) => this.#reading(channel, value, Number.isNaN(timeMs) ? this.#arrivalMs : timeMs),
-    refuse: (_, cause) => this.counters.refuse(cause),
+    refuse: (channel, cause) => this.#refuse(channel, cause),
   };
   readonly #onChange = (change: LateChange): void => this.#correct(change, true);
   #serving: Serving | null = null;
@@ -66,6 +68,7 @@ export class Engine {
     this.#options = options;
     this.decoder = new ReadingDecoder(site);
     this.plans = new PlanKeeper(site);
+    this.watch = new SignalWatch(channels.length);
     this.#ranges = channels.map((channel) => channel.range);
     const aggregates = channels.map((channel) => channel.aggregate);
     const wraps = channels.map(wrapOf);
@@ -266,17 +269,22 @@ export class Engine {
   #reading(channel: number, value: number, timeMs: number): void {
     const cause = refusedBecause(value, this.#ranges[channel]!);
     if (cause !== null) {
-      this.counters.refuse(cause);
+      this.#refuse(channel, cause);
       return;
     }
     const placed = this.aligner.place(channel, timeMs, value, this.#notAfterMs, this.#onChange);
     if (placed === 'duplicate') this.counters.duplicates++;
-    else if (placed === 'future' || placed === 'too-late' || placed === 'flood') this.counters.refuse(placed);
+    else if (placed === 'future' || placed === 'too-late' || placed === 'flood') this.#refuse(channel, placed);
     else {
       this.counters.readings++;
       if (placed !== 'taken') this.counters.late++;
       this.#journal.reading(channel, timeMs, value);
     }
+  }
+
+  #refuse(channel: number, cause: RefusedCause): void {
+    this.counters.refuse(cause);
+    this.watch.refused[channel]!++;
   }
 
   /** At a tick boundary, when the aligner knows of the tick ahead only as open. */
@@ -312,8 +320,10 @@ export class Engine {
     this.plans.came(tick, values);
     this.counters.ticks++;
     if (toDisk) this.#journal.tick(tick, values);
-    if (this.#serving !== null) this.#serving.step(tick, values);
-    else this.#plain.step(tick, values, (channel) => this.aligner.readingsOf(tick, channel));
+    if (this.#serving !== null) {
+      this.#serving.step(tick, values);
+      this.watch.observe(this.#serving);
+    } else this.#plain.step(tick, values, (channel) => this.aligner.readingsOf(tick, channel));
     this.#journal.coded(this.#recorded);
   }
 

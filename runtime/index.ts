@@ -10,3 +10,4 @@ export { type Outlook, outlooksOf } from './publish/outlooks.ts';
 export { readingOf, trustOf } from './publish/warnings.ts';
 export { SignalWarnings, type Trust } from './publish/warnings-signal.ts';
 export { Serving } from './serving.ts';
+export { SignalWatch } from './signals/watch.ts';

@@ -3,6 +3,7 @@ import {
   ARITHMETIC,
   BUNDLE_FORMAT,
   type BundleChange,
+  type HealthFacts,
   type HealthStatus,
   healthMessage,
   MESSAGE_FORMAT,
@@ -13,6 +14,7 @@ import type { ShipCounts } from '../residuals/ship.ts';
 import { VERSION } from '../version.ts';
 import { inputOutlooks, planFault } from './inputs.ts';
 import { type Judged, judge } from './quality.ts';
+import { signalsHealth } from './signals.ts';
 
 /** 9999-12-31: what a will says stays true until it is replaced. */
 const FOREVER_MS = 253_402_300_799_000;
@@ -92,6 +94,9 @@ export function healthPayload(report: HealthReport): Uint8Array {
       late: counters.late,
       corrections: counters.corrections,
       duplicates: counters.duplicates,
+      passed_over: engine.watch.passedOver.reduce((sum, count) => sum + count, 0),
+      hanging: engine.watch.hanging,
+      drifting: engine.watch.drifting,
       ticks: counters.ticks,
       ticks_skipped: counters.skippedTicks,
       segments_open: journal.ticks > 0 ? 1 : 0,
@@ -110,8 +115,18 @@ export function healthPayload(report: HealthReport): Uint8Array {
       reconnects: report.reconnects,
     },
     lastChange: report.lastChange,
+    ...signalsOf(report),
     versions: VERSIONS,
   });
+}
+
+/** Ages are those of the readings' own time where ticks close by it. */
+function signalsOf({ engine, nowMs, wallTickMs }: HealthReport): Pick<HealthFacts, 'signals'> {
+  const { serving, watch, aligner } = engine;
+  if (serving === null || serving.tick < 0) return {};
+  return {
+    signals: signalsHealth(serving, watch, aligner.lastReadingMs, wallTickMs === null ? aligner.newestMs : nowMs),
+  };
 }
 
 /** Nothing of plans at sites without them. */
