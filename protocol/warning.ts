@@ -55,7 +55,7 @@ export interface LimitWarning {
   readonly sinceMs: number;
   /** Of crossing within the horizon; of a warning that expired, as it was said last. */
   readonly probability: number;
-  /** When the nearer bound lies past the limit, when it is crossed if it is, when the farther bound does; null: not in sight. */
+  /** When it is crossed, if it is within the horizon: the bounds' lower end, the middle, the upper end; null: not known. */
   readonly earliestMs: number | null;
   readonly likelyMs: number | null;
   readonly latestMs: number | null;
@@ -106,10 +106,9 @@ const checkList = (message: WarningMessage): WarningMessage => {
   for (const [i, { limit, earliest, likely, latest }] of warnings.entries()) {
     if (warnings.findIndex((one) => one.limit === limit) !== i)
       refuse(`warnings[${i}].limit`, 'each limit once', `${limit} again`);
-    const times = [earliest, likely, latest].map((time) =>
-      time === null ? Number.POSITIVE_INFINITY : Date.parse(time),
-    );
-    if (!(times[0]! <= times[1]! && times[1]! <= times[2]!))
+    const times = [earliest, likely, latest].flatMap((time) => (time === null ? [] : [Date.parse(time)]));
+    const isOrdered = times.every((time, k) => k === 0 || time >= times[k - 1]!);
+    if (!isOrdered || (likely === null && times.length > 0))
       refuse(`warnings[${i}]`, 'earliest <= likely <= latest', `${earliest}, ${likely}, ${latest}`);
   }
   return message;

@@ -34,9 +34,9 @@ export interface Crossing {
   /** Where it is crossed within the horizon, the step by which it is as probably as not; null: nothing is said to cross. */
   readonly likely: number | null;
   /**
-   * Steps at which the nearer and the farther of the bounds first lie past the limit, never later and earlier than likely; null
-   * where likely is, and for the farther one where it never does. From bounds, which are held to what comes, not from chances:
-   * a mean of few drawn paths says nothing of how early a crossing may be (measured: a third came before its 5 %).
+   * And the steps before and after which the bounds' tails lie, 5 % each at a coverage of 90 %. Null where likely is, and where
+   * the chances come of drawn paths: few as they are, they do not tell of tails (measured on wet wells: two in five crossings came
+   * before their 5 %).
    */
   readonly earliest: number | null;
   readonly latest: number | null;
@@ -67,8 +67,6 @@ export function crossing(
   const { scratch, crossed } = bounds;
   const perRadius = 1 / bounds.quantile;
   radiiOf(model, bounds, state, signal, scratch, 0);
-  const nearer = boundPast(model, scratch, median, signal, limit, side, 1);
-  const farther = boundPast(model, scratch, median, signal, limit, side, -1);
   for (let h = 0; h < H; h++) scratch[h] *= perRadius;
   const oneStep = bounds.radius[signal * H] * perRadius;
   const fresh = (model.crossingFresh ?? 1) * oneStep;
@@ -85,37 +83,20 @@ export function crossing(
       addChain(model, bounds, median, away, row, 1 / draws.count, fresh, signal, limit, side);
     }
   }
-  return answerOf(crossed, observedShare(model, signal, limit, crossed[H - 1]), nearer, farther);
+  const tail = place < 0 ? (1 - model.coverage) / 2 : null;
+  return answerOf(crossed, observedShare(model, signal, limit, crossed[H - 1]), tail);
 }
 
-/** Puts together what is said, from the chances of having crossed by each step and when the bounds lie past the limit. */
-function answerOf(crossed: Float64Array, probability: number, nearer: number | null, farther: number | null): Crossing {
-  const likely = stepOf(crossed, 1, 0.5);
+/** Puts together what is said, from the chances of having crossed by each step; `tail` null: nothing is said of tails. */
+function answerOf(crossed: Float64Array, probability: number, tail: number | null): Crossing {
   return {
     probability,
     // The map was learned of the whole horizon: it says nothing of when, so that each step keeps its share of the chance.
     step: stepOf(crossed, probability, 0.5),
-    likely,
-    earliest: likely === null ? null : Math.min(likely, nearer ?? likely),
-    latest: likely === null || farther === null ? null : Math.max(likely, farther),
+    likely: stepOf(crossed, 1, 0.5),
+    earliest: tail === null ? null : stepOf(crossed, 1, tail),
+    latest: tail === null ? null : stepOf(crossed, 1, 1 - tail),
   };
-}
-
-/** First step at which a bound lies past the limit: the nearer one (way 1) or the farther (−1); null: it never does. */
-function boundPast(
-  model: CommonModel,
-  radii: Float64Array,
-  median: Float64Array,
-  signal: number,
-  limit: number,
-  side: 'above' | 'below',
-  way: 1 | -1,
-): number | null {
-  const H = model.horizon;
-  const sign = side === 'above' ? 1 : -1;
-  for (let h = 0; h < H; h++)
-    if ((sign * (median[signal * H + h] - limit)) / model.scale[signal] + way * radii[h] > 0) return h + 1;
-  return null;
 }
 
 /** First step by which `whole` times its share of all that ever crosses is above `part`; null: none. */

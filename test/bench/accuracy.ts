@@ -17,5 +17,5 @@ export async function* rows(options: BenchOptions): AsyncIterable<Row> {
   yield* planRows(options);
   yield* openRows(options);
   if (isWanted(options, 'wet well')) yield* wetWellRows(options);
-  if (options.only !== null && isWanted(options, 'warnings')) yield* warningRows(options);
+  if (options.only !== null) yield* warningRows(options);
 }

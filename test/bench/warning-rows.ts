@@ -11,7 +11,7 @@ import { Sensor } from '@stillwell/demo-fleet/dist/sensors.js';
 import { parseSite, type Site } from '@stillwell/protocol';
 import { FIT_DEFAULTS, fit as fitHistory } from '@stillwell/trainer';
 import { DATA_SETS, type DataCase, readSet } from './datasets.ts';
-import { type BenchOptions, type Row, row } from './harness.ts';
+import { type BenchOptions, isWanted, type Row, row } from './harness.ts';
 import { listen, type Outcome, outcomeOf } from './warning-outcome.ts';
 
 const START_MS = Date.UTC(2025, 3, 7);
@@ -36,6 +36,11 @@ interface Case {
 
 /** Rows of the case. */
 export async function* warningRows(options: BenchOptions): AsyncIterable<Row> {
+  if (isWanted(options, 'warnings of plants')) yield* plantRows(options);
+  if (isWanted(options, 'warnings of open data')) yield* openDataRows(options);
+}
+
+async function* plantRows(options: BenchOptions): AsyncIterable<Row> {
   const demo: Outcome[] = [];
   for (const [k, site] of DEMO_SITES.entries()) {
     const outcome = await outcomeOfCase(plantCase(site, FIRST_SEED + k));
@@ -46,7 +51,10 @@ export async function* warningRows(options: BenchOptions): AsyncIterable<Row> {
     yield line(`warnings of ${site.name}, opened and not come true`, 'a day', wrong, 'lower');
     options.note(`${site.name}: ${told(outcome)}`);
   }
-  yield* together('warnings of six plants', demo);
+  yield* together('warnings of plants', demo);
+}
+
+async function* openDataRows(options: BenchOptions): AsyncIterable<Row> {
   const open: Outcome[] = [];
   for (const set of DATA_SETS) {
     if (!OPEN_SETS.includes(set.name)) continue;
@@ -85,10 +93,10 @@ function* together(name: string, outcomes: readonly Outcome[]): Iterable<Row> {
     sum((one) => one.warned) / excursions,
     'higher',
   );
-  const held = came.filter(
-    ({ crossed, earliest, latest }) => crossed! >= (earliest ?? 0) && crossed! <= (latest ?? Number.POSITIVE_INFINITY),
-  );
-  yield line(`${name}: crossed between earliest and latest`, 'share', held.length / came.length, 'higher');
+  const timed = came.filter(({ earliest, latest }) => earliest !== null && latest !== null);
+  const held = timed.filter(({ crossed, earliest, latest }) => crossed! >= earliest! && crossed! <= latest!);
+  const between = `${name}: of ${timed.length} that said so, crossed between earliest and latest`;
+  if (timed.length > 0) yield line(between, 'share', held.length / timed.length, 'higher');
   const late = came.map(({ likely, crossed }) => Math.abs(likely! - crossed!));
   yield line(`${name}: likely time off by`, 'ticks', late.reduce((a, b) => a + b, 0) / late.length, 'lower');
 }

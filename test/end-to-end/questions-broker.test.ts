@@ -1,7 +1,7 @@
 /** Questions over a real broker: answered to the asker, on MQTT 5 also where it says; refused elsewhere, counted in health. */
 import { type AnswerMessage, parseAnswerMessage, parseHealthMessage, topicsOf } from '@stillwell/protocol';
 import { type Connection, type IncomingPacket, openConnection } from '@stillwell/runtime/mqtt';
-import { describe, expect, onTestFinished, test } from 'vitest';
+import { describe, expect, onTestFinished, test, vi } from 'vitest';
 import { systemClock } from '../../runtime/clock.ts';
 import { nodeDisk } from '../../runtime/disk.ts';
 import { Gateway } from '../../runtime/gateway.ts';
@@ -131,7 +131,9 @@ describe.each(brokers)('on %s', (_, startBroker, missing) => {
       );
       // Nobody answers for a site that is not there.
       const silent = ['--broker', broker.url, '--site', 'nowhere', '--plan', 'pump=1', '--wait', '0.3'];
+      const complaint = vi.spyOn(process.stderr, 'write').mockImplementation(() => true);
       await hear(askCommand(), ...silent);
+      expect(complaint).toHaveBeenCalledWith(expect.stringMatching(/^stillwell: no answer of nowhere within 0.3 s; /));
       expect(process.exitCode).toBe(1);
       process.exitCode = 0;
     },

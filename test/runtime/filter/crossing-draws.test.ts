@@ -63,6 +63,8 @@ describe('a cycle whose phase is not known', () => {
     const { ask } = begin(withSd(1e-3), peaks);
     expect(ask(0.5).probability).toBeCloseTo(14 / 16, 9);
     expect(ask(0.5).step).toBe(19);
+    // Half of the 14 have crossed after the eighth peak; sixteen paths do not tell of tails.
+    expect(ask(0.5)).toMatchObject({ likely: 17, earliest: null, latest: null });
     expect(ask(1.5)).toEqual({ probability: 0, step: null, earliest: null, likely: null, latest: null });
     expect(ask(-0.05, 'below').probability).toBeCloseTo(1, 9);
     // The flat path in the middle crosses nothing: what would be said without the paths.

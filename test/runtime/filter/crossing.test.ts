@@ -55,7 +55,7 @@ const begin = (model: LinearModel) => {
 
 describe('against simulated error chains', () => {
   test.each([1, 0.98, 0.9, 0.5])('phi %d', (phi) => {
-    const { model, sds } = chainModel(phi);
+    const { model } = chainModel(phi);
     const { state, bounds, median } = begin(model);
     for (const drift of [0, 0.01]) {
       for (const limit of [0.3, 0.6, 1, 1.5, 2.5]) {
@@ -68,21 +68,17 @@ describe('against simulated error chains', () => {
         // A crossing probability that hovers at one half has no sharp step.
         if (step > 0 && truth[H - 1] > 0.6) expect(Math.abs((said.step ?? H) - step)).toBeLessThanOrEqual(5);
         if (truth[H - 1] < 0.4) expect(said.step).toBeNull();
-        // Of the paths that cross at all, half have by the likely step. Of a chance said 0.06 off, shares of it are off by as
-        // much of it; seldom crossed, and there is nothing to hold against.
+        // Of the paths that cross at all, few have by the earliest step, half by the likely one, most by the latest. Of a
+        // chance said 0.06 off, shares of it are off by as much of it; seldom crossed, and there is nothing to hold against.
         if (truth[H - 1] > 0.3) {
-          expect(truth[said.likely! - 1] / truth[H - 1]).toBeGreaterThan(0.38);
-          expect(said.likely === 1 ? 0 : truth[said.likely! - 2] / truth[H - 1]).toBeLessThan(0.62);
-        }
-        // The bounds lie QUANTILE standard deviations off, as this model's radii do.
-        const past = (way: number): number | null => {
-          const step = path.findIndex((y, h) => (y - 5) / 2 + way * QUANTILE * sds[h]! > limit) + 1;
-          return step === 0 ? null : step;
-        };
-        if (said.likely === null) expect([said.earliest, said.latest]).toEqual([null, null]);
-        else {
-          expect(said.earliest).toBe(Math.min(said.likely, past(1) ?? said.likely));
-          expect(said.latest).toBe(past(-1) === null ? null : Math.max(said.likely, past(-1)!));
+          for (const [at, share] of [
+            [said.earliest, 0.05],
+            [said.likely, 0.5],
+            [said.latest, 0.95],
+          ] as const) {
+            expect(truth[at! - 1] / truth[H - 1]).toBeGreaterThan(share - 0.12);
+            expect(at === 1 ? 0 : truth[at! - 2] / truth[H - 1]).toBeLessThan(share + 0.12);
+          }
         }
         // The mirror image is the same number.
         const mirrored = path.map((y) => 10 - y);
