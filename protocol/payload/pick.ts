@@ -1,6 +1,7 @@
 /** Picks a reading out of a document: value, and where the site file names them, time and quality. */
 import { parseInstant } from '../instant.ts';
 import { pointerTokens, resolveTokens } from '../pointer.ts';
+import { isDecimal } from './decimal.ts';
 import { type GoodRule, type GoodTest, goodTest } from './good.ts';
 import type { PayloadReason } from './refusal.ts';
 
@@ -22,8 +23,19 @@ export interface Picked {
   got: unknown;
 }
 
-const DECIMAL = /^[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?$/;
 const LATEST_MS = 8.64e15;
+
+/** Signals of one message mostly share its time: the text read last, and what it was. */
+let lastInstant = '';
+let lastInstantMs: number | null = null;
+
+const instantOf = (text: string): number | null => {
+  if (text !== lastInstant) {
+    lastInstant = text;
+    lastInstantMs = parseInstant(text);
+  }
+  return lastInstantMs;
+};
 
 /** Numbers, true and false as 1 and 0 (common practice for switches), and decimal text; NaN for anything else. */
 export const numberFrom = (value: unknown): number => {
@@ -31,7 +43,7 @@ export const numberFrom = (value: unknown): number => {
   if (typeof value === 'boolean') return value ? 1 : 0;
   if (typeof value !== 'string') return Number.NaN;
   const trimmed = value.trim();
-  return DECIMAL.test(trimmed) ? Number(trimmed) : Number.NaN;
+  return isDecimal(trimmed) ? Number(trimmed) : Number.NaN;
 };
 
 /** A rule made ready. */
@@ -64,7 +76,7 @@ export class Picker {
     into.timeMs = Number.NaN;
     if (this.#time === null) return null;
     const time = resolveTokens(document, this.#time);
-    const timeMs = typeof time === 'string' ? parseInstant(time) : time;
+    const timeMs = typeof time === 'string' ? instantOf(time) : time;
     if (typeof timeMs !== 'number' || !(Math.abs(timeMs) <= LATEST_MS))
       return refuse(into, 'time', this.#rule.time!, time);
     into.timeMs = timeMs;
