@@ -4,6 +4,8 @@ export const BUNDLE_FORMAT = 1;
 export const SEGMENT_FORMAT = 1;
 /** The format of segments made without a bundle, in which readings off the lattice may stand as they came. */
 export const PLAIN_SEGMENT_FORMAT = 2;
+/** The format of segments in which a channel is coarser than its sensor, to save bytes. */
+export const COARSE_SEGMENT_FORMAT = 3;
 /** Number of the filter's arithmetic: the fixed order of + - × ÷ √ that makes two machines agree to the bit. */
 export const ARITHMETIC = 1;
 /** Number carried by every JSON message as `format`. */

@@ -22,6 +22,7 @@ export function segmentFacts(bytes: Uint8Array) {
     channels: head.channelCount,
     signals: head.signalCount,
     start: head.start,
+    coarseness: Array.from(head.coarseness),
     startStateBytes: head.startState?.length ?? null,
     bytes: bytes.length,
     format: head.format,
@@ -36,12 +37,17 @@ export function segmentText(facts: ReturnType<typeof segmentFacts>): string {
     facts.start === 'keyed'
       ? `keyed: carries the filter's state (${bytesText(facts.startStateBytes ?? 0)} unpacked), decodes by itself`
       : `chained: starts where segment ${facts.number - 1} of the stream ended`;
+  const coarse = facts.coarseness.flatMap((power, c) =>
+    power > 0 ? [`channel ${c} in ${2 ** power} steps at a time`] : [],
+  );
+  const resolution = coarse.length === 0 ? 'as the sensors said' : `${coarse.join(', ')}; the rest as the sensors said`;
   return [
     `Segment ${facts.number} of site ${facts.site}, gateway ${facts.gateway}, stream ${facts.stream}`,
     `  hash        ${facts.hash}`,
     `  bundle      ${facts.bundle ?? 'none'}`,
     `  ticks       ${facts.ticks} from tick ${facts.firstTick} (tick length stands in the bundle)`,
     `  channels    ${facts.channels}, ${facts.signals} of them signals`,
+    `  resolution  ${resolution}`,
     `  start       ${start}`,
     `  size        ${bytesText(facts.bytes)}, ${perValue.toFixed(2)} bits a tick and channel`,
     `  format ${facts.format}, arithmetic ${facts.arithmetic}; checksum holds`,

@@ -6,9 +6,9 @@
  * | offset | size | meaning |
  * | --- | --- | --- |
  * | 0 | 4 | magic "SWS1" |
- * | 4 | 1 | segment format: 1, or 2 where no bundle made the forecasts |
+ * | 4 | 1 | segment format: 1, 2 where no bundle made the forecasts, or 3 where a channel is coarser than its sensor |
  * | 5 | 1 | arithmetic version of the filter |
- * | 6 | 1 | flags: 1 keyed start, 2 bundle digest present, 4 corrections present, others 0 |
+ * | 6 | 1 | flags: 1 keyed start, 2 bundle digest present, 4 corrections present, 8 coarser (format 3, always), others 0 |
  * | 7 | 8 | stream id, random, new for each fresh data folder |
  * | 15 | 0 or 32 | digest of the bundle document that made the forecasts; absent: no bundle |
  * | then | 1-5 | number within the stream |
@@ -18,6 +18,7 @@
  * | then | 1-2 | signals among them |
  * | then | 2-65 | site: length in bytes, then UTF-8 |
  * | then | 2-65 | gateway: length in bytes, then UTF-8 |
+ * | then | 0 or 1-128 | coarser only: half a byte a channel, k: readings lie on every 2^k-th step of the lattice |
  * | then | 4 | check of the start state |
  * | then | 4 | check of the end state |
  * | then | 0 or 2.. | keyed start only: length, then the start state in raw DEFLATE (RFC 1951) |
@@ -33,8 +34,9 @@ import { createHash } from 'node:crypto';
 import { crc32, deflateRawSync, inflateRawSync } from 'node:zlib';
 import { MAX_CHANNELS, MAX_NAME_BYTES } from '../limits.ts';
 import { isName, NAME_RULE } from '../name.ts';
-import { ARITHMETIC, PLAIN_SEGMENT_FORMAT, SEGMENT_FORMAT } from '../version.ts';
+import { ARITHMETIC, COARSE_SEGMENT_FORMAT, type PLAIN_SEGMENT_FORMAT, SEGMENT_FORMAT } from '../version.ts';
 import { ByteCursor, type ByteSink } from './bytes.ts';
+import { checkCoarseness, coarsenessBytes, packCoarseness, unpackCoarseness } from './coarseness.ts';
 import {
   MAX_CORRECTIONS,
   MAX_SEGMENT_BYTES,
@@ -48,6 +50,7 @@ const MAGIC = [0x53, 0x57, 0x53, 0x31] as const;
 const KEYED = 1;
 const HAS_BUNDLE = 2;
 const HAS_CORRECTIONS = 4;
+const COARSE = 8;
 const CRC_BYTES = 4;
 const MAX_FIRST_TICK = Number.MAX_SAFE_INTEGER - MAX_SEGMENT_TICKS;
 
@@ -66,6 +69,8 @@ export interface SegmentHead {
   readonly ticks: number;
   readonly channelCount: number;
   readonly signalCount: number;
+  /** (nc) k: readings lie on every 2^k-th step of the lattice; all 0: as the sensors said. Late readings are always that. */
+  readonly coarseness: Uint8Array;
   /** 'keyed': the filter's state at the start is inside; 'chained': it is the end state of the segment before. */
   readonly start: 'chained' | 'keyed';
   /** Inflated start state of a keyed segment, its check done; null when chained. */
@@ -107,9 +112,9 @@ export function readSegmentParts(bytes: Uint8Array): SegmentParts {
   const end = checkFrame(bytes);
   const cursor = new ByteCursor(bytes, end);
   cursor.position = MAGIC.length;
-  const format = cursor.varint('format', SEGMENT_FORMAT, PLAIN_SEGMENT_FORMAT);
+  const format = cursor.varint('format', SEGMENT_FORMAT, COARSE_SEGMENT_FORMAT);
   const arithmetic = cursor.varint('arithmetic version', 1, ARITHMETIC);
-  const flags = cursor.varint('flags', 0, KEYED | HAS_BUNDLE | HAS_CORRECTIONS);
+  const flags = readFlags(cursor, format);
   const stream = cursor.take(8, 'stream id').slice();
   const bundle = flags & HAS_BUNDLE ? cursor.take(32, 'bundle digest').slice() : new Uint8Array(32);
   const number = cursor.varint('number', 0, 0xffffffff);
@@ -121,6 +126,10 @@ export function readSegmentParts(bytes: Uint8Array): SegmentParts {
     throw segmentError(`segment size: expected at most ${MAX_SEGMENT_VALUES} values, got ${ticks} × ${channelCount}`);
   const site = readName(cursor, 'site');
   const gateway = readName(cursor, 'gateway');
+  const coarseness =
+    flags & COARSE
+      ? unpackCoarseness(cursor.take(coarsenessBytes(channelCount), 'coarseness'), channelCount)
+      : new Uint8Array(channelCount);
   const startCheck = cursor.uint32('start state check');
   const endCheck = cursor.uint32('end state check');
   const startState = flags & KEYED ? readState(cursor, startCheck) : null;
@@ -144,9 +153,17 @@ export function readSegmentParts(bytes: Uint8Array): SegmentParts {
     ticks,
     channelCount,
     signalCount,
+    coarseness,
   };
   const head: SegmentHead = Object.freeze({ ...where, start, startState, startCheck, endCheck });
   return { head, correctionCount, corrections, payload };
+}
+
+/** Format 3 is written for coarse channels alone, so that everything else stays readable for those who know no other. */
+function readFlags(cursor: ByteCursor, format: number): number {
+  const known = KEYED | HAS_BUNDLE | HAS_CORRECTIONS;
+  if (format === COARSE_SEGMENT_FORMAT) return cursor.varint('flags', COARSE, COARSE | known);
+  return cursor.varint('flags', 0, known);
 }
 
 /** What the writer knows when it closes a segment. */
@@ -161,8 +178,10 @@ export interface SegmentHeadFields {
   readonly signalCount: number;
   readonly startState: Uint8Array;
   readonly keyed: boolean;
-  /** SEGMENT_FORMAT unless said otherwise. */
+  /** Of the formats without coarser channels, which say theirs by `coarseness`; SEGMENT_FORMAT unless said otherwise. */
   readonly format?: typeof SEGMENT_FORMAT | typeof PLAIN_SEGMENT_FORMAT;
+  /** (nc) as in SegmentHead; absent: as the sensors said. */
+  readonly coarseness?: Uint8Array;
 }
 
 /** Writes everything before the payload. */
@@ -174,11 +193,15 @@ export function writeSegmentHead(
   corrections: { readonly count: number; readonly bytes: Uint8Array },
 ): void {
   const hasBundle = fields.bundle.some((byte) => byte !== 0);
+  const coarse = fields.coarseness?.some((power) => power > 0) ? fields.coarseness : null;
   sink.bytes(Uint8Array.from(MAGIC));
-  sink.varint(fields.format ?? SEGMENT_FORMAT);
+  sink.varint(coarse === null ? (fields.format ?? SEGMENT_FORMAT) : COARSE_SEGMENT_FORMAT);
   sink.varint(ARITHMETIC);
   sink.varint(
-    (fields.keyed ? KEYED : 0) | (hasBundle ? HAS_BUNDLE : 0) | (corrections.count > 0 ? HAS_CORRECTIONS : 0),
+    (fields.keyed ? KEYED : 0) |
+      (hasBundle ? HAS_BUNDLE : 0) |
+      (corrections.count > 0 ? HAS_CORRECTIONS : 0) |
+      (coarse === null ? 0 : COARSE),
   );
   sink.bytes(fields.stream);
   if (hasBundle) sink.bytes(fields.bundle);
@@ -186,6 +209,7 @@ export function writeSegmentHead(
     sink.varint(value);
   writeName(sink, fields.site);
   writeName(sink, fields.gateway);
+  if (coarse !== null) sink.bytes(packCoarseness(coarse));
   sink.uint32(stateCheck(fields.startState));
   sink.uint32(stateCheck(endState));
   if (fields.keyed) {
@@ -219,6 +243,9 @@ export function checkHeadFields(fields: SegmentHeadFields): void {
   checkWhole('stream id bytes', fields.stream.length, 8, 8);
   checkWhole('bundle digest bytes', fields.bundle.length, 32, 32);
   checkWhole('start state bytes', fields.startState.length, 0, MAX_STATE_BYTES);
+  if (fields.coarseness !== undefined) checkCoarseness(fields.coarseness, fields.channelCount);
+  if ((fields.format ?? SEGMENT_FORMAT) !== SEGMENT_FORMAT && fields.coarseness?.some((power) => power > 0))
+    throw segmentError('segment coarseness: expected none without a bundle, got some');
   for (const field of ['site', 'gateway'] as const) checkName(field, fields[field]);
 }
 

@@ -1,3 +1,4 @@
+export { coarseIndex, MAX_COARSENESS } from './coarseness.ts';
 export type { Correction } from './corrections.ts';
 export { readSegmentHead, type SegmentHead, segmentHash } from './header.ts';
 export { latticeIndex, latticeValue } from './lattice.ts';

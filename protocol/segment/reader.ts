@@ -2,11 +2,13 @@
  * Takes the readings back out of a segment, one tick at a time, so that the filter can run beside it: the forecast made
  * before each tick is what the tick was coded against.
  */
+import { stepsOf } from './coarseness.ts';
 import { BitDecoder } from './coder.ts';
 import { type Correction, decodeCorrections } from './corrections.ts';
 import { readSegmentParts, type SegmentHead, stateCheck } from './header.ts';
-import { segmentError } from './limits.ts';
+import { MAX_INDEX, segmentError } from './limits.ts';
 import { TickModel } from './tick-model.ts';
+import { coarseScales } from './writer.ts';
 
 /** Reads a segment back, tick by tick, from the forecasts that its writer was given. */
 export class SegmentReader {
@@ -14,6 +16,9 @@ export class SegmentReader {
   readonly corrections: readonly Correction[];
   readonly #decoder: BitDecoder;
   readonly #model: TickModel;
+  /** (nc) steps of the lattice to one that was coded; null: one each. */
+  readonly #steps: Float64Array | null;
+  readonly #forecast: Float64Array;
   #done = 0;
 
   /**
@@ -26,7 +31,9 @@ export class SegmentReader {
     this.corrections = Object.freeze(
       decodeCorrections(corrections, correctionCount, head.firstTick, head.channelCount),
     );
-    this.#model = new TickModel(head.channelCount, residualScaleSteps, head.format);
+    this.#steps = stepsOf(head.coarseness);
+    this.#forecast = new Float64Array(this.#steps === null ? 0 : head.channelCount);
+    this.#model = new TickModel(head.channelCount, coarseScales(residualScaleSteps, this.#steps), head.format);
     this.#decoder = new BitDecoder(payload, 'payload');
     if (head.ticks === 0) this.#decoder.finish();
   }
@@ -48,7 +55,13 @@ export class SegmentReader {
     if (predicted.length !== count || out.length !== count)
       throw segmentError(`segment tick: expected ${count} channels, got ${predicted.length} and ${out.length}`);
     if (this.#done === this.head.ticks) return false;
-    this.#model.code(this.#decoder, out, predicted, out);
+    const steps = this.#steps;
+    if (steps === null) this.#model.code(this.#decoder, out, predicted, out);
+    else {
+      for (let c = 0; c < count; c++) this.#forecast[c] = predicted[c]! / steps[c]!;
+      this.#model.code(this.#decoder, out, this.#forecast, out);
+      for (let c = 0; c < count; c++) out[c] = checkBack(out[c]! * steps[c]!, c);
+    }
     this.#done++;
     if (this.#done === this.head.ticks) this.#decoder.finish();
     return true;
@@ -69,4 +82,11 @@ export class SegmentReader {
         { which, expected, got },
       );
   }
+}
+
+/** A coded number within bounds may, in steps of the sensor, lie beyond them: nobody wrote that. */
+function checkBack(index: number, channel: number): number {
+  if (Math.abs(index) > MAX_INDEX)
+    throw segmentError(`segment payload, channel ${channel}: expected an index within ±2^40, got ${index}`);
+  return index;
 }

@@ -35,6 +35,11 @@ export class TickModel {
     }
   }
 
+  /** (nc) scale of each channel's forecast errors now, in the steps that are coded; 0 where nothing was read. */
+  scales(): Float64Array {
+    return Float64Array.from(this.#predictors, ({ scale, hasLast }) => (hasLast ? scale : 0));
+  }
+
   /** `out` gets the indices, NaN where missing or off the lattice; `lattice` and `raw` count only when `coder` writes. */
   code(coder: BitCoder, lattice: Float64Array, predicted: Float64Array, out: Float64Array): void {
     let neighbour = NO_NEIGHBOUR;

@@ -5,6 +5,7 @@
 
 import { SEGMENT_FORMAT } from '../version.ts';
 import { ByteSink } from './bytes.ts';
+import { stepsOf } from './coarseness.ts';
 import { BitEncoder } from './coder.ts';
 import { type Correction, encodeCorrections } from './corrections.ts';
 import { checkHeadFields, type SegmentHeadFields, sealSegment, writeSegmentHead } from './header.ts';
@@ -17,12 +18,21 @@ export interface SegmentOpening extends SegmentHeadFields {
   readonly residualScaleSteps: Float64Array;
 }
 
+/** Scales that the coder starts from: the bundle's, in the steps that are coded. */
+export function coarseScales(residualScaleSteps: Float64Array, steps: Float64Array | null): Float64Array {
+  return steps === null ? residualScaleSteps : residualScaleSteps.map((scale, c) => scale / steps[c]!);
+}
+
 /** Writes a segment, tick by tick; `finish` closes it. */
 export class SegmentWriter {
   readonly #fields: SegmentOpening;
   readonly #encoder = new BitEncoder();
   readonly #model: TickModel;
   readonly #scratch: Float64Array;
+  /** (nc) steps of the lattice to one that is coded; null: one each. */
+  readonly #steps: Float64Array | null;
+  readonly #coarse: Float64Array;
+  readonly #forecast: Float64Array;
   readonly #corrections: Correction[] = [];
   #ticks = 0;
   #finished = false;
@@ -30,9 +40,15 @@ export class SegmentWriter {
   /** throws  ProtocolError 'segment' on a field no reader would take back */
   constructor(opening: SegmentOpening) {
     checkHeadFields(opening);
-    this.#fields = { ...opening, stream: opening.stream.slice(), bundle: opening.bundle.slice() };
-    this.#model = new TickModel(opening.channelCount, opening.residualScaleSteps, opening.format ?? SEGMENT_FORMAT);
-    this.#scratch = new Float64Array(opening.channelCount);
+    const count = opening.channelCount;
+    const coarseness = opening.coarseness?.slice() ?? new Uint8Array(count);
+    this.#fields = { ...opening, stream: opening.stream.slice(), bundle: opening.bundle.slice(), coarseness };
+    this.#steps = stepsOf(coarseness);
+    const scales = coarseScales(opening.residualScaleSteps, this.#steps);
+    this.#model = new TickModel(count, scales, opening.format ?? SEGMENT_FORMAT);
+    this.#scratch = new Float64Array(count);
+    this.#coarse = new Float64Array(this.#steps === null ? 0 : count);
+    this.#forecast = new Float64Array(this.#coarse.length);
   }
 
   get ticks(): number {
@@ -42,6 +58,11 @@ export class SegmentWriter {
   /** Coded bytes so far, header and the last few bytes not counted; for closing by size. */
   get bytesSoFar(): number {
     return this.#encoder.sink.length;
+  }
+
+  /** (nc) size of each channel's residuals of late, in steps of its lattice: what its readings cost rises with it. 0: none came. */
+  residualSteps(): Float64Array {
+    return this.#model.scales().map((scale, c) => scale * (this.#steps?.[c] ?? 1));
   }
 
   /** Whether another tick still fits the limits of one segment. */
@@ -54,8 +75,9 @@ export class SegmentWriter {
    * Adds one tick.
    *
    * shapes  lattice, predicted, raw (nc)
-   * units   lattice indices, whole, NaN where missing; predictions in lattice steps, real, NaN where there is none; raw:
-   *         readings off the lattice in their own unit, where the index is NaN, NaN for none; of the plain format alone
+   * units   lattice indices, whole, multiples of 2^coarseness, NaN where missing; predictions in lattice steps, real, NaN
+   *         where there is none; raw: readings off the lattice in their own unit, where the index is NaN, NaN for none; of
+   *         the plain format alone
    * throws  ProtocolError 'segment' before anything is coded
    * cost    about 1-2 µs a channel; allocates nothing but the growing output
    */
@@ -67,8 +89,20 @@ export class SegmentWriter {
     if (this.isFull) throw segmentError(`segment is full after ${this.#ticks} ticks: close it and open the next`);
     for (let c = 0; c < count; c++) checkIndex(lattice[c]!, c);
     if (raw !== null) this.#takeRaw(raw);
-    this.#model.code(this.#encoder, lattice, predicted, this.#scratch);
+    if (this.#steps === null) this.#model.code(this.#encoder, lattice, predicted, this.#scratch);
+    else this.#pushCoarse(lattice, predicted, this.#steps);
     this.#ticks++;
+  }
+
+  #pushCoarse(lattice: Float64Array, predicted: Float64Array, steps: Float64Array): void {
+    for (let c = 0; c < steps.length; c++) {
+      const index = lattice[c]! / steps[c]!;
+      if (!Number.isNaN(index) && !Number.isInteger(index))
+        throw segmentError(`segment channel ${c}: expected a multiple of ${steps[c]}, got ${lattice[c]}`);
+      this.#coarse[c] = index;
+      this.#forecast[c] = predicted[c]! / steps[c]!;
+    }
+    this.#model.code(this.#encoder, this.#coarse, this.#forecast, this.#scratch);
   }
 
   /** Adds a late reading for a tick already closed, in this segment or before; the last word on it. */

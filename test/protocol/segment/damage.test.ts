@@ -133,7 +133,8 @@ describe('a hostile header', () => {
   const strange = encodeCorrections([{ tick: 1, channel: 200, index: 5 }], 1000);
   const wrong: [string, Parameters<typeof forge>[0], RegExp][] = [
     ['another magic', { magic: Uint8Array.from(Buffer.from('SWB1')) }, /magic/],
-    ['a later format', { format: 3 }, /format: expected 1..2, got 3/],
+    ['a later format', { format: 4 }, /format: expected 1..3, got 4/],
+    ['the coarser format with nothing coarse', { format: 3 }, /flags: expected 8/],
     ['a later arithmetic', { arithmetic: 99 }, /arithmetic version/],
     ['an unknown flag', { flags: 8 }, /flags/],
     ['a number past 32 bits', { number: 2 ** 32 }, /number: expected/],

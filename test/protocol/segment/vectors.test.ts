@@ -17,6 +17,7 @@ interface Vector {
     readonly residualScaleSteps: readonly number[];
     readonly startState: string;
     readonly keyed: boolean;
+    readonly coarseness?: readonly number[];
   };
   readonly endState: string;
   readonly lattice: readonly (readonly (number | null)[])[];
@@ -25,15 +26,19 @@ interface Vector {
   readonly bytes: string;
 }
 
-const file = new URL('../../vectors/segment-1.json', import.meta.url);
-const { segments } = JSON.parse(readFileSync(file, 'utf8')) as { segments: Vector[] };
+const segments = [1, 3].flatMap((format) => {
+  const file = new URL(`../../vectors/segment-${format}.json`, import.meta.url);
+  const { segments: vectors } = JSON.parse(readFileSync(file, 'utf8')) as { segments: Vector[] };
+  return vectors.map((vector) => ({ ...vector, format }));
+});
 const binary = (hex: string): Uint8Array => new Uint8Array(Buffer.from(hex, 'hex'));
 const numbers = (row: readonly (number | null)[]): Float64Array => Float64Array.from(row, (v) => v ?? Number.NaN);
 
-describe.each(segments)('segment format 1, $name', (vector) => {
+describe.each(segments)('segment format $format, $name', (vector) => {
   const { head } = vector;
   const scales = Float64Array.from(head.residualScaleSteps);
   const bytes = binary(vector.bytes);
+  const coarseness = Uint8Array.from(head.coarseness ?? new Array<number>(head.channelCount).fill(0));
 
   it('is read as it was written', () => {
     const reader = new SegmentReader(bytes, scales);
@@ -46,6 +51,8 @@ describe.each(segments)('segment format 1, $name', (vector) => {
       channelCount: head.channelCount,
       signalCount: head.signalCount,
     });
+    expect(reader.head.format).toBe(vector.format);
+    expect(reader.head.coarseness).toEqual(coarseness);
     expect(reader.head.stream).toEqual(binary(head.stream));
     expect(reader.head.bundle).toEqual(binary(head.bundle));
     expect(reader.head.startState).toEqual(head.keyed ? binary(head.startState) : null);
@@ -67,6 +74,7 @@ describe.each(segments)('segment format 1, $name', (vector) => {
       bundle: binary(head.bundle),
       startState: binary(head.startState),
       residualScaleSteps: scales,
+      coarseness,
     });
     vector.lattice.forEach((row, t) => {
       writer.push(numbers(row), numbers(vector.predicted[t]!));
