@@ -12,6 +12,7 @@ import { ReadingDecoder } from './ingest/decode.ts';
 import { PlanKeeper, type PlanOutcome } from './ingest/plans.ts';
 import { refusedBecause } from './ingest/quality.ts';
 import { RecentTicks } from './ingest/recent.ts';
+import { budgetOf, type ResolutionBudget } from './residuals/budget.ts';
 import { Journal, type JournalPosition } from './residuals/journal.ts';
 import { PlainRecord } from './residuals/plain-record.ts';
 import type { Recorded } from './residuals/recorded.ts';
@@ -42,6 +43,7 @@ export class Engine {
   readonly watch: SignalWatch;
   readonly aligner: Aligner;
   readonly spool: Spool;
+  readonly budget: ResolutionBudget;
   readonly identity: Identity;
   readonly #options: EngineOptions;
   /** Null at sites without Sparkplug. */
@@ -77,6 +79,9 @@ export class Engine {
     const start = openRecord(options, keeper);
     this.identity = start.identity;
     this.spool = new Spool(disk, `${folder}/spool`, options.spoolBytes, this.streamName);
+    this.budget = budgetOf(site, options.spoolBytes);
+    const budget = start.from?.recovered.checkpoint.budget ?? null;
+    if (budget !== null) this.budget.restore(budget);
     this.#plain = PlainRecord.of(site);
     this.#journal = this.#openJournal(start.from?.recovered.checkpoint ?? { number: 0, sinceKeyed: 0 });
     this.#start(keeper, start);
@@ -200,6 +205,7 @@ export class Engine {
       this.#align(record);
     }
     if (recorded.tick >= 0 && this.aligner.nextTick !== recorded.tick + 1) this.aligner.startAt(recorded.tick + 1);
+    recorded.coarsen(this.budget.coarseness);
     if (recorded instanceof Serving) {
       recorded.plans = this.plans;
       this.#serving = recorded;
@@ -233,7 +239,7 @@ export class Engine {
 
   #openJournal(position: JournalPosition): Journal {
     const { disk, folder, gateway, site, segmentTicks } = this.#options;
-    const { spool } = this;
+    const { spool, budget } = this;
     const channelCount = this.#ranges.length;
     const { stream } = this.identity;
     const keepTicks = RECENT_TICKS;
@@ -245,6 +251,7 @@ export class Engine {
         gateway,
         stream,
         spool,
+        budget,
         segmentTicks,
         keepTicks,
         channelCount,

@@ -2,7 +2,7 @@
  * One bundle at work: its model, the filter's state and bounds, and the forecast of the present tick. Steps are the same
  * whether ticks come live, from the journal after a restart, or from the recent ticks that warm a new bundle.
  */
-import { type Bundle, latticeIndex, latticeValue, MAX_INDEX } from '@stillwell/protocol';
+import { type Bundle, coarseIndex, latticeIndex, latticeValue, MAX_INDEX } from '@stillwell/protocol';
 import {
   type Bounds,
   createBounds,
@@ -65,6 +65,8 @@ export class Serving implements Recorded {
   readonly isOutside: Uint8Array;
   /** null: ticks of the past are stepped through, and what was planned then is not known. */
   plans: PlanSource | null = null;
+  /** (nc) readings are folded in on every 2^k-th step of the lattice, as the record keeps them (residuals/budget.ts). */
+  readonly #coarseness: Uint8Array;
   readonly #values: Float64Array;
   readonly #plan: Float64Array;
   #isPlanned = false;
@@ -77,6 +79,7 @@ export class Serving implements Recorded {
     this.bounds = createBounds(model);
     this.lattice = new Float64Array(model.channelCount);
     this.predicted = new Float64Array(model.channelCount);
+    this.#coarseness = new Uint8Array(model.channelCount);
     this.#values = new Float64Array(model.channelCount);
     this.#plan = new Float64Array((model.channelCount - model.signalCount) * model.horizon);
     this.isOutside = new Uint8Array(model.channelCount);
@@ -118,6 +121,11 @@ export class Serving implements Recorded {
     return steps;
   }
 
+  /** From the next tick on readings lie on every 2^k-th step of the lattice; at a segment's boundary alone. */
+  coarsen(coarseness: Uint8Array): void {
+    this.#coarseness.set(coarseness);
+  }
+
   /** Folds one tick in: readings onto the lattice, forecast before, update, path, bounds. `readings` (nc) in units. */
   step(tick: number, readings: Float64Array): void {
     const { model, predicted, state } = this;
@@ -137,7 +145,7 @@ export class Serving implements Recorded {
       const step = model.latticeStep[c]!;
       const offset = model.latticeOffset[c]!;
       const index = latticeIndex(readings[c]!, step, offset);
-      lattice[c] = Math.abs(index) <= MAX_INDEX ? index : Number.NaN;
+      lattice[c] = Math.abs(index) <= MAX_INDEX ? coarseIndex(index, this.#coarseness[c]!) : Number.NaN;
       this.#values[c] = latticeValue(lattice[c]!, step, offset);
       this.isOutside[c] = this.#values[c]! < model.clipLow[c]! || this.#values[c]! > model.clipHigh[c]! ? 1 : 0;
     }

@@ -43,6 +43,9 @@ function statusText(health: HealthMessage, pid: number | null): string {
       `${count('segments_waiting')} waiting, ${count('segments_confirmed')} confirmed, ${count('segments_shed')} shed`,
     ],
   ];
+  const coarse = Object.entries((counters.resolution_shed ?? {}) as Record<string, number>);
+  if (coarse.length > 0)
+    lines.push(['coarser', `${coarse.map(([name, steps]) => `${name} in ${steps} steps`).join(', ')}, to save bytes`]);
   if (change !== null)
     lines.push(['change', `${change.outcome} at ${change.at}${change.reason === null ? '' : `: ${change.reason}`}`]);
   return lines.map(([name, text]) => `${name.padEnd(9)} ${text}\n`).join('');

@@ -108,9 +108,12 @@ export function healthPayload(report: HealthReport): Uint8Array {
       segments_parked: ship.parked,
       segments_in_conflict: ship.conflicts,
       segments_shed: journal.counts.shedSegments,
+      segments_shed_bytes: journal.counts.shedBytes,
+      ticks_shed: journal.counts.shedTicks,
       segments_lost: journal.counts.lost + spool.damaged,
       ...furtherCounts(report),
       ...sparkplugCounts(engine),
+      ...budgetCounts(engine),
       spool_bytes: spool.bytes,
       reconnects: report.reconnects,
     },
@@ -138,6 +141,16 @@ function furtherCounts({ engine, counts }: HealthReport): Record<string, number 
 /** Nothing at sites without that standard. */
 function sparkplugCounts({ decoder }: Engine): Record<string, Readonly<Record<string, number>>> {
   return decoder.sparkplug === null ? {} : { sparkplug: { ...decoder.sparkplug.counts } };
+}
+
+/** What resolution has been shed, by channel: so many of the sensor's steps are one of the record's. */
+function budgetCounts({ budget, site }: Engine): Record<string, number | Readonly<Record<string, number>>> {
+  const shed: Record<string, number> = {};
+  [...site.signals, ...site.inputs].forEach(({ name }, c) => {
+    if (budget.coarseness[c]! > 0) shed[name] = 2 ** budget.coarseness[c]!;
+  });
+  const counts = { segment_bytes_a_day: Math.round(budget.projectedBytes), budget_exceeded: budget.isShort ? 1 : 0 };
+  return Object.keys(shed).length === 0 ? counts : { ...counts, resolution_shed: shed };
 }
 
 function judgeGateway(report: HealthReport): Judged {

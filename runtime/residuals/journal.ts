@@ -9,8 +9,10 @@
  */
 import { join } from 'node:path';
 import { MAX_INDEX, MAX_SEGMENT_BYTES, PLAIN_SEGMENT_FORMAT, SegmentWriter } from '@stillwell/protocol';
+import type { Model } from '@stillwell/runtime/filter';
 import { type Disk, replaceOn, sweepParts } from '../disk.ts';
 import type { LateChange, OpenReadings } from '../ingest/align.ts';
+import type { ResolutionBudget } from './budget.ts';
 import { type Checkpoint, encodeCheckpoint } from './checkpoint.ts';
 import type { Recorded } from './recorded.ts';
 import type { Spool } from './spool.ts';
@@ -26,6 +28,7 @@ export interface JournalOptions {
   /** 8 random bytes. */
   readonly stream: Uint8Array;
   readonly spool: Spool;
+  readonly budget: ResolutionBudget;
   /** Ticks after which a segment closes. */
   readonly segmentTicks: number;
   /** Ticks whose journal files are kept to warm new bundles with. */
@@ -54,6 +57,7 @@ export interface JournalCounts {
   readonly closed: number;
   readonly shedSegments: number;
   readonly shedBytes: number;
+  readonly shedTicks: number;
   /** Segments lost since the disk took nothing for too long. */
   readonly lost: number;
 }
@@ -74,6 +78,8 @@ const KEYED_EVERY = 168;
 /** … and one a day while nobody takes them, since then the oldest may have to go. */
 const KEYED_EVERY_WAITING = 24;
 const HELD_IN_MEMORY = 8;
+/** Of a segment, about, without start and readings. */
+const HEAD_BYTES = 110;
 
 /** Path of the checkpoint in a data folder. */
 export function checkpointPath(folder: string): string {
@@ -94,7 +100,7 @@ export function journalPath(folder: string, number: number): string {
 export class Journal {
   readonly #options: JournalOptions;
   readonly #streamName: string;
-  readonly #counts = { closed: 0, shedSegments: 0, shedBytes: 0, lost: 0 };
+  readonly #counts = { closed: 0, shedSegments: 0, shedBytes: 0, shedTicks: 0, lost: 0 };
   /** Journal files that still hold wanted ticks, oldest first. */
   readonly #kept: KeptJournal[] = [];
   #unsaved: { number: number; bytes: Uint8Array }[] = [];
@@ -163,6 +169,7 @@ export class Journal {
   begin(recorded: Recorded): void {
     this.#sinceKeyed = 0;
     this.#startState = recorded.savedState();
+    recorded.coarsen(this.#options.budget.coarseness);
     this.#persist(recorded);
   }
 
@@ -198,8 +205,10 @@ export class Journal {
 
   /** Closes the segment in `before`'s state and opens the next in `after`'s, the same one or another bundle's. */
   turnOver(before: Recorded, after: Recorded): void {
-    const hasClosed = this.#finish(before);
-    if (before !== after || this.#mustKey || (hasClosed && this.#isKeyDue())) this.#sinceKeyed = 0;
+    const hasClosed = this.#finish(before, after);
+    after.coarsen(this.#options.budget.coarseness);
+    const isBroken = this.#options.spool.takeBreak() || this.#mustKey;
+    if (before !== after || isBroken || (hasClosed && this.#isKeyDue())) this.#sinceKeyed = 0;
     else if (hasClosed) this.#sinceKeyed++;
     this.#mustKey = false;
     this.#startState = after.savedState();
@@ -259,12 +268,12 @@ export class Journal {
       residualScaleSteps: recorded.residualScaleSteps(),
       startState: this.#startState,
       keyed: this.#sinceKeyed === 0,
-      ...(recorded.raw === null ? {} : { format: PLAIN_SEGMENT_FORMAT }),
+      ...(recorded.raw === null ? { coarseness: this.#options.budget.coarseness } : { format: PLAIN_SEGMENT_FORMAT }),
     });
   }
 
   /** Whether there was a segment to close. */
-  #finish(recorded: Recorded): boolean {
+  #finish(recorded: Recorded, after: Recorded): boolean {
     const writer = this.#writer;
     this.#writer = null;
     this.#corrections = 0;
@@ -272,7 +281,9 @@ export class Journal {
     this.#kept.push({ number: this.#number, ticks: writer.ticks, bytes: this.#wal?.bytes ?? 0 });
     this.#counts.closed++;
     try {
-      this.#unsaved.push({ number: this.#number, bytes: writer.finish(recorded.savedState()) });
+      const bytes = writer.finish(recorded.savedState());
+      this.#unsaved.push({ number: this.#number, bytes });
+      if (recorded.model !== null && after.model !== null) this.#account(writer, bytes.length, after.model);
     } catch {
       // Larger than a segment may be, which closing by size prevents; the next one must then stand alone.
       this.#lose();
@@ -285,6 +296,19 @@ export class Journal {
     return true;
   }
 
+  #account(writer: SegmentWriter, bytes: number, model: Model): void {
+    const { budget, spool, segmentTicks } = this.#options;
+    const startBytes = this.#sinceKeyed === 0 ? Math.max(0, bytes - writer.bytesSoFar - HEAD_BYTES) : 0;
+    const ticksBetweenStarts = segmentTicks * (this.#isWaiting ? KEYED_EVERY_WAITING : KEYED_EVERY);
+    const segment = { bytes, startBytes, ticks: writer.ticks, residualSteps: writer.residualSteps() };
+    budget.closed({ ...segment, ticksBetweenStarts, waitingBytes: spool.bytes }, model);
+  }
+
+  /** Whether nobody has taken segments for long. */
+  get #isWaiting(): boolean {
+    return this.#options.spool.waiting.length >= KEYED_EVERY_WAITING;
+  }
+
   #lose(): void {
     this.#counts.lost++;
     this.#mustKey = true;
@@ -292,13 +316,11 @@ export class Journal {
 
   #isKeyDue(): boolean {
     const next = this.#sinceKeyed + 1;
-    return (
-      next >= KEYED_EVERY || (next >= KEYED_EVERY_WAITING && this.#options.spool.waiting.length >= KEYED_EVERY_WAITING)
-    );
+    return next >= KEYED_EVERY || (next >= KEYED_EVERY_WAITING && this.#isWaiting);
   }
 
   #persist(recorded: Recorded): void {
-    const { disk, folder, spool, stream } = this.#options;
+    const { disk, folder, spool, stream, budget } = this.#options;
     if (this.#fault === null) this.#guard(() => this.#wal?.sync());
     this.#closeWal();
     this.#fault = null;
@@ -311,6 +333,7 @@ export class Journal {
         bundle: recorded.digest,
         state: this.#startState,
         bounds: recorded.savedBounds(),
+        budget: budget.state,
       };
       // Before the checkpoint that names it, so that open readings are in the old file or the new at every moment.
       this.#openWal(0);
@@ -322,12 +345,10 @@ export class Journal {
   }
 
   #shed(): void {
-    const { spool } = this.#options;
-    const shed = spool.shed();
+    const shed = this.#options.spool.shed();
     this.#counts.shedSegments += shed.segments;
     this.#counts.shedBytes += shed.bytes;
-    // The open segment hangs on what is gone; the one after it starts afresh.
-    if (shed.segments > 0 && spool.waiting.length === 0) this.#mustKey = true;
+    this.#counts.shedTicks += shed.ticks;
   }
 
   #openWal(keepBytes: number): void {

@@ -157,6 +157,12 @@ export class PlainRecord implements Recorded {
     return new PlainRecord({ layout: changed.layout, tick: changed.tick, last: changed.#last }, declaredOf(site));
   }
 
+  get model(): null {
+    return null;
+  }
+
+  coarsen(): void {}
+
   /** Nothing is known of the size of a residual. */
   residualScaleSteps(): Float64Array {
     return new Float64Array(this.channelCount).fill(Number.NaN);

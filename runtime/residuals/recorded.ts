@@ -1,3 +1,5 @@
+import type { Model } from '@stillwell/runtime/filter';
+
 /** What a record is coded against: a bundle at work, or each channel's last value where there is none. */
 export interface Recorded {
   /** Last tick folded in; -1 before the first. */
@@ -12,6 +14,10 @@ export interface Recorded {
   readonly predicted: Float64Array;
   /** (nc) readings off the lattice, NaN for none; null where all are rounded to it. */
   readonly raw: Float64Array | null;
+  /** Null without a bundle: such a record is never made coarser, since nobody knows what its readings are worth. */
+  readonly model: Model | null;
+  /** From the next tick on readings lie on every 2^k-th step (nc); at a segment's boundary alone. Nothing without a bundle. */
+  coarsen(coarseness: Uint8Array): void;
   /** Lattice index of a late reading. */
   indexOf(channel: number, value: number): number;
   /** (nc) expected size of a residual in lattice steps, NaN where unknown. */

@@ -9,6 +9,7 @@ import type { Disk } from '../disk.ts';
 import { RuntimeError } from '../errors.ts';
 import type { OpenReadings } from '../ingest/align.ts';
 import { Serving } from '../serving.ts';
+import { budgetOf } from './budget.ts';
 import type { Checkpoint } from './checkpoint.ts';
 import { Journal } from './journal.ts';
 import { isLayoutOf, PlainRecord } from './plain-record.ts';
@@ -105,7 +106,18 @@ function closeRecord(
   const spool = new Spool(disk, `${folder}/spool`, spoolBytes, name);
   spool.discardFrom(name, checkpoint.number);
   const { channelCount } = record;
-  const none = { disk, folder, site: site.site, gateway, stream, spool, channelCount, openReadings: noReadings };
+  const budget = budgetOf(site, spoolBytes);
+  const none = {
+    disk,
+    folder,
+    site: site.site,
+    gateway,
+    stream,
+    spool,
+    budget,
+    channelCount,
+    openReadings: noReadings,
+  };
   const journal = new Journal({ ...none, segmentTicks: Number.POSITIVE_INFINITY, keepTicks: 0 }, checkpoint);
   journal.startFrom(checkpoint.state);
   const indexOf = channelsInSite(record, site);

@@ -154,6 +154,7 @@ export class Shipper {
     if (attempt.isParked) return;
     attempt.isParked = true;
     this.#counts.parked++;
+    this.#options.spool.breakChain();
   }
 
   #attemptOf(entry: Waiting): Attempt {

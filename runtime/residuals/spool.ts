@@ -4,7 +4,7 @@
  * chained ones behind it that could not be decoded without it, and that is counted.
  */
 import { join } from 'node:path';
-import { readSegmentHead, segmentHash } from '@stillwell/protocol';
+import { readSegmentHead, type SegmentHead, segmentHash } from '@stillwell/protocol';
 import { type Disk, replaceOn, sweepParts } from '../disk.ts';
 
 /** One segment waiting. */
@@ -18,6 +18,8 @@ export interface Waiting {
 export interface Shed {
   readonly segments: number;
   readonly bytes: number;
+  /** In segments that could still be read. */
+  readonly ticks: number;
 }
 
 /** See the file head. */
@@ -28,6 +30,7 @@ export class Spool {
   readonly #entries: Waiting[] = [];
   #bytes = 0;
   #damaged = 0;
+  #isBroken = false;
 
   /**
    * maxBytes  most bytes kept; the newest segment is kept whatever its size
@@ -61,6 +64,18 @@ export class Spool {
     return this.#damaged;
   }
 
+  /** Says that the desk will not have a segment, nor what hangs on it. */
+  breakChain(): void {
+    this.#isBroken = true;
+  }
+
+  /** Whether the chain has been broken since this was asked last: the next segment should then stand alone. */
+  takeBreak(): boolean {
+    const isBroken = this.#isBroken;
+    this.#isBroken = false;
+    return isBroken;
+  }
+
   /** Writes a segment durably. It is listed, so `waiting` shows it: the caller releases it by sending. */
   put(stream: string, number: number, segment: Uint8Array): void {
     replaceOn(this.#disk, this.#path(stream, number), segment);
@@ -81,6 +96,7 @@ export class Spool {
       // Damaged on disk: sending it would only make the desk refuse it.
     }
     this.#damaged++;
+    this.breakChain();
     this.#drop(entry);
     return null;
   }
@@ -107,25 +123,28 @@ export class Spool {
 
   /** Drops the oldest until the bound holds, then any chained ones whose start is gone with them. */
   shed(): Shed {
-    let segments = 0;
-    let bytes = 0;
+    const shed = { segments: 0, bytes: 0, ticks: 0 };
     const drop = (): void => {
       const entry = this.#entries[0]!;
-      segments++;
-      bytes += entry.bytes;
+      shed.segments++;
+      shed.bytes += entry.bytes;
+      shed.ticks += this.#head(entry)?.ticks ?? 0;
       this.#drop(entry);
     };
     while (this.#bytes > this.#maxBytes && this.#entries.length > 1) drop();
-    while (segments > 0 && this.#entries.length > 0 && !this.#isKeyed(this.#entries[0]!)) drop();
-    return { segments, bytes };
+    while (shed.segments > 0 && this.#entries.length > 0 && this.#head(this.#entries[0]!)?.start !== 'keyed') drop();
+    // The open segment hangs on what is gone.
+    if (shed.segments > 0 && this.#entries.length === 0) this.breakChain();
+    return shed;
   }
 
-  #isKeyed(entry: Waiting): boolean {
+  /** Null where the file is gone or damaged. */
+  #head(entry: Waiting): SegmentHead | null {
     const bytes = this.#disk.read(this.#path(entry.stream, entry.number));
     try {
-      return bytes !== null && readSegmentHead(bytes).start === 'keyed';
+      return bytes === null ? null : readSegmentHead(bytes);
     } catch {
-      return false;
+      return null;
     }
   }
 

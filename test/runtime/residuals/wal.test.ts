@@ -156,9 +156,18 @@ describe('a checkpoint', () => {
     bundle: new Uint8Array(32).fill(8),
     state: new Uint8Array([1, 2, 3]),
     bounds: new Uint8Array([4, 5]),
+    budget: { coarseness: Uint8Array.of(0, 3, 15), bytesPerTick: 2.5, ticks: 600, startBytes: 1234 },
   };
 
   test('comes back', () => expect(decodeCheckpoint(encodeCheckpoint(checkpoint))).toEqual(checkpoint));
+
+  test('of an earlier program comes back too, without a budget', () => {
+    const earlier = { ...checkpoint, budget: null };
+    const bytes = encodeCheckpoint(earlier);
+    expect(Buffer.from(bytes.subarray(0, 4)).toString('latin1')).toBe('SWC1');
+    expect(bytes.length).toBe(64 + 5);
+    expect(decodeCheckpoint(bytes)).toEqual(earlier);
+  });
 
   test('cut or with any bit turned is not believed', () => {
     const good = encodeCheckpoint(checkpoint);
