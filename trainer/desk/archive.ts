@@ -26,6 +26,8 @@ export interface ArchivedChannel {
   readonly original: Float64Array;
   /** Null where no bundle said it and the readings do not lie on what the gateway found: then it is to be found in them. */
   readonly lattice: { readonly step: number; readonly offset: number } | null;
+  /** (n) k: the reading lies on every 2^k-th step of the lattice, as the gateway's byte budget had it; absent: none coarser. */
+  readonly coarseness?: Uint8Array;
 }
 
 /**
@@ -66,7 +68,7 @@ export async function readSite(store: Store, site: string, sinceTick = Number.MI
   const spans = await store.db
     .selectFrom('spans')
     .innerJoin('segments', 'segments.id', 'spans.segment')
-    .select(['spans.bundle', 'spans.first_tick', 'spans.ticks', 'spans.channels', 'spans.lattice'])
+    .select(['spans.bundle', 'spans.first_tick', 'spans.ticks', 'spans.channels', 'spans.lattice', 'spans.coarseness'])
     .where('spans.site', '=', site)
     .where(sql<boolean>`spans.first_tick + spans.ticks > ${sinceTick}`)
     .orderBy('spans.first_tick')
@@ -145,6 +147,15 @@ interface Run {
   readonly at: number;
 }
 
+/** What the store says of a span. */
+interface LaidSpan {
+  readonly bundle: string;
+  readonly first_tick: number;
+  readonly ticks: number;
+  readonly channels: number;
+  readonly coarseness: ArrayBuffer | Uint8Array | null;
+}
+
 /** Columns by channel name over the union of all covered ticks. */
 class Grid {
   readonly #layouts: ReadonlyMap<string, KnownLayout>;
@@ -156,6 +167,8 @@ class Grid {
   #ticks = new Float64Array(0);
   #values: Float64Array[] = [];
   #original: Float64Array[] = [];
+  /** By column; undefined while every reading of it is as fine as its sensor. */
+  readonly #coarseness: (Uint8Array | undefined)[] = [];
 
   constructor(last: KnownLayout, layouts: ReadonlyMap<string, KnownLayout>) {
     this.#layouts = layouts;
@@ -197,23 +210,33 @@ class Grid {
   }
 
   /** numbers  (ticks × channels) lattice indices, then pairs of place and reading for what lay off the lattice */
-  lay(span: { bundle: string; first_tick: number; ticks: number; channels: number }, numbers: Float64Array): void {
+  lay(span: LaidSpan, numbers: Float64Array): void {
     const { channels } = this.#layouts.get(span.bundle)!.layout;
     const { ticks, channels: count } = span;
     const at = ticks > 0 ? this.#place(span.first_tick) : 0;
+    const coarseness = span.coarseness === null ? new Uint8Array(count) : toBytes(span.coarseness);
     for (let c = 0; c < count; c++) {
       const { step, offset } = channels[c]!.lattice;
       const column = this.#columnFor(channels[c]!);
+      const marks = this.#marks(channels[c]!.name, coarseness[c]!);
       for (let i = 0; i < ticks; i++) {
         const index = numbers[i * count + c]!;
         // Where two streams cover a tick, a reading beats a gap.
-        if (!Number.isNaN(index)) column[at + i] = latticeValue(index, step, offset);
+        if (Number.isNaN(index)) continue;
+        column[at + i] = latticeValue(index, step, offset);
+        if (marks !== undefined) marks[at + i] = coarseness[c]!;
       }
     }
     for (let i = ticks * count; i < numbers.length; i += 2) {
       const place = numbers[i]!;
       this.#columnFor(channels[place % count]!)[at + Math.floor(place / count)] = numbers[i + 1]!;
     }
+  }
+
+  #marks(name: string, power: number): Uint8Array | undefined {
+    const column = this.#columnOf.get(name)!;
+    if (power > 0) this.#coarseness[column] ??= new Uint8Array(this.#ticks.length);
+    return this.#coarseness[column];
   }
 
   keepOriginal(): void {
@@ -224,6 +247,8 @@ class Grid {
     const one = this.#layouts.get(digest)!.layout.channels[channel]!;
     const column = this.#columnFor(one);
     const at = this.#place(tick);
+    const marks = this.#marks(one.name, 0);
+    if (marks !== undefined) marks[at] = 0;
     const value = latticeValue(index, one.lattice.step, one.lattice.offset);
     if (column[at] === value) return false;
     column[at] = value;
@@ -236,6 +261,7 @@ class Grid {
       lattice: this.#unsure.has(channel.name) ? heldLattice(this.#values[i]!, channel.lattice) : channel.lattice,
       values: this.#values[i]!,
       original: this.#original[i]!,
+      ...(this.#coarseness[i] === undefined ? {} : { coarseness: this.#coarseness[i] }),
     }));
     return { ticks: this.#ticks, channels };
   }

@@ -45,6 +45,8 @@ interface Decoded {
   readonly ticks: number;
   readonly channels: number;
   readonly numbers: Float64Array;
+  /** As in the spans table. */
+  readonly coarseness: Uint8Array | null;
   readonly corrections: readonly Correction[];
   readonly readings: number;
   readonly endState: Uint8Array;
@@ -175,10 +177,10 @@ export class Chain {
         .set({ state: 'decoded', reason: null, readings: decoded.readings, end_state: decoded.endState })
         .where('id', '=', row.id)
         .execute();
-      const { firstTick: first_tick, ticks, channels } = decoded;
+      const { firstTick: first_tick, ticks, channels, coarseness } = decoded;
       await db
         .insertInto('spans')
-        .values({ ...common, first_tick, ticks, channels, lattice: packNumbers(decoded.numbers) })
+        .values({ ...common, first_tick, ticks, channels, lattice: packNumbers(decoded.numbers), coarseness })
         .execute();
       for (let at = 0; at < corrections.length; at += 500) {
         await db
@@ -220,8 +222,10 @@ function residualRows(segment: number, replay: Replay) {
 
 function fromBundle(replay: Replay, digest: string): Decoded {
   const { firstTick, ticks, channelCount: channels } = replay.head;
+  const coarseness = replay.head.coarseness.some((power) => power > 0) ? replay.head.coarseness : null;
   const residuals = (segment: number): ReturnType<typeof residualRows> => residualRows(segment, replay);
-  return { ...replay, name: async () => digest, firstTick, ticks, channels, numbers: replay.lattice, residuals };
+  const numbers = replay.lattice;
+  return { ...replay, name: async () => digest, firstTick, ticks, channels, numbers, coarseness, residuals };
 }
 
 function fromPlain(replay: PlainReplay, site: string): Decoded {
@@ -229,7 +233,8 @@ function fromPlain(replay: PlainReplay, site: string): Decoded {
   numbers.set(replay.lattice);
   numbers.set(replay.off, replay.lattice.length);
   const channels = replay.layout.channels.length;
-  return { ...replay, name: (db) => keepLayout(db, site, replay.layout), channels, numbers, residuals: () => [] };
+  const name = (db: Kysely<Tables>): Promise<string> => keepLayout(db, site, replay.layout);
+  return { ...replay, name, channels, numbers, coarseness: null, residuals: () => [] };
 }
 
 /** Deflated float64 little-endian. */

@@ -34,9 +34,17 @@ export function statusText(statuses: readonly SiteStatus[]): string {
   return [textTable(head, rows, [1, 2, 3, 4, 5, 6, 8, 9]), ...statuses.map(siteText)].filter(Boolean).join('\n\n');
 }
 
+/** What the byte budget took away. */
+function coarseText({ coarse, coarseTicks, ticks }: SiteStatus): string {
+  const share = `${coarseTicks} of ${ticks} ticks hold readings coarser than their sensors, to save bytes`;
+  if (coarse.length === 0) return `  ${share}; full resolution now`;
+  return `  ${share}; now ${coarse.map(({ channel, steps }) => `${channel} in ${steps} steps at a time`).join(', ')}`;
+}
+
 function siteText(status: SiteStatus): string {
   const notes = [
     ...status.waitsFor.map((what) => `  waits for ${what}`),
+    ...(status.coarseTicks === 0 ? [] : [coarseText(status)]),
     ...(status.brokenReason === null ? [] : [`  broken: ${status.brokenReason}`]),
     ...(status.refusedReason === null ? [] : [`  last refused: ${status.refusedReason}`]),
   ];

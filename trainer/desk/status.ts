@@ -3,7 +3,7 @@
  * bundle expected. Reads the store only; a desk may be collecting into it meanwhile.
  */
 import { Layouts } from './layouts.ts';
-import type { Store } from './store/open.ts';
+import { type Store, toBytes } from './store/open.ts';
 
 /** Residuals of one signal; bias and spread as shares of the bundle's expected spread: 0 and 1 are as expected. */
 export interface ResidualHealth {
@@ -38,6 +38,10 @@ export interface SiteStatus {
   readonly readings: number;
   readonly bitsPerReading: number | null;
   readonly corrections: number;
+  /** Ticks with a signal coarser than its sensor, which the gateway's byte budget, or its spool, made so. */
+  readonly coarseTicks: number;
+  /** Signals and inputs coarser than their sensors at the last tick: steps of the sensor to one of the record. */
+  readonly coarse: readonly { readonly channel: string; readonly steps: number }[];
   readonly lastSeenMs: number | null;
   /** Digest of the bundle of the latest decoded segment. */
   readonly bundle: string | null;
@@ -137,7 +141,7 @@ async function ofSegments(store: Store, site: string) {
 async function ofSpans(store: Store, layouts: Layouts, site: string) {
   const spans = await store.db
     .selectFrom('spans')
-    .select(['segment', 'bundle', 'first_tick', 'ticks'])
+    .select(['segment', 'bundle', 'first_tick', 'ticks', 'coarseness'])
     .where('site', '=', site)
     .orderBy('first_tick')
     .execute();
@@ -149,7 +153,7 @@ async function ofSpans(store: Store, layouts: Layouts, site: string) {
   const last = spans.at(-1);
   const known = last ? await layouts.find(last.bundle) : null;
   if (!last || !known) {
-    return { fromMs: null, toMs: null, ticks: 0, corrections: 0, bundle: null, residuals: [] };
+    return { fromMs: null, toMs: null, ticks: 0, corrections: 0, ...NOTHING_COARSE, bundle: null, residuals: [] };
   }
   const { isOfBundle, layout } = known;
   const { tickMs, channels } = layout;
@@ -163,12 +167,20 @@ async function ofSpans(store: Store, layouts: Layouts, site: string) {
     toMs: toTick * tickMs,
     ticks: spans.reduce((sum, span) => sum + span.ticks, 0),
     corrections: Number(corrections.count),
+    coarseTicks: spans.reduce((sum, span) => sum + (span.coarseness === null ? 0 : span.ticks), 0),
+    coarse: last.coarseness === null ? [] : coarseChannels(channels, toBytes(last.coarseness)),
     bundle: isOfBundle ? last.bundle : null,
     // Without a bundle nothing was forecast: there are no residuals to judge.
     residuals: !isOfBundle
       ? []
       : signals.map((signal, channel) => healthOf(signal, all.get(channel), late.get(channel))),
   };
+}
+
+const NOTHING_COARSE = { coarseTicks: 0, coarse: [] };
+
+function coarseChannels(channels: readonly { readonly name: string }[], coarseness: Uint8Array) {
+  return channels.flatMap(({ name }, c) => (coarseness[c]! > 0 ? [{ channel: name, steps: 2 ** coarseness[c]! }] : []));
 }
 
 interface Sums {

@@ -62,6 +62,8 @@ export interface ConflictTable {
  * Lattice numbers of a decoded segment: deflated float64 little-endian, tick by tick, NaN where missing; behind them, of a
  * segment without a bundle, pairs of place and reading for what lay off the lattice. `bundle` is the digest of the bundle,
  * or else of the layout that the segment says.
+ *
+ * coarseness  a byte k a channel: its numbers are multiples of 2^k; null where all came as the sensors said them
  */
 export interface SpanTable {
   segment: number;
@@ -71,6 +73,7 @@ export interface SpanTable {
   ticks: number;
   channels: number;
   lattice: Blob;
+  coarseness: NullableBlob;
 }
 
 /** A reading that came after its tick was closed, beside what the filter saw. */
@@ -135,6 +138,7 @@ export const SCHEMA_STEPS: readonly ((db: Kysely<Tables>) => Promise<void>)[] = 
   createFirstTables,
   indexWhatIsNew,
   keepLayouts,
+  markCoarse,
 ];
 
 async function createFirstTables(db: Kysely<Tables>): Promise<void> {
@@ -152,6 +156,10 @@ async function keepLayouts(db: Kysely<Tables>): Promise<void> {
   await sql
     .raw('CREATE TABLE layouts (digest TEXT PRIMARY KEY, site TEXT NOT NULL, document BLOB NOT NULL)')
     .execute(db);
+}
+
+async function markCoarse(db: Kysely<Tables>): Promise<void> {
+  await sql.raw('ALTER TABLE spans ADD COLUMN coarseness BLOB').execute(db);
 }
 
 const FIRST_TABLES = [
