@@ -6,10 +6,11 @@
  * Libraries with parts that are not JavaScript, or that start a file of their own, are left to Node. Licences of the others
  * go along in one file.
  */
-import { cpSync, existsSync, readdirSync, readFileSync, renameSync, rmSync, writeFileSync } from 'node:fs';
+import { cpSync, existsSync, renameSync, rmSync, writeFileSync } from 'node:fs';
 import { dirname, join, relative, resolve } from 'node:path';
 import { fileURLToPath } from 'node:url';
 import { rolldown } from 'rolldown';
+import { noticesOf, packageOf, packagesOf, requiredYaml } from '../../runtime/join/libraries.js';
 import { isCurrent, LIST, rowOf } from './current.js';
 
 const at = (path) => fileURLToPath(new URL(path, import.meta.url));
@@ -22,20 +23,6 @@ const LEFT_OUT = ['@duckdb/node-bindings', 'libsql', 'piscina'];
 const PLACED = ['compiled-file.js', 'kernels/load.js'].map((path) => join(DIST, path));
 const WASM = join(DIST, 'kernels/kernels.wasm');
 
-/** Loaded at its first use by a call that no bundler can follow; here by one that it can, and no sooner. */
-const yamlJoined = {
-  name: 'yaml-joined',
-  transform: {
-    filter: { id: /protocol\/dist\/yaml-library\.js$/ },
-    handler(code) {
-      const followed = code.replace("load('yaml')", "require('yaml')");
-      if (followed === code)
-        throw new Error('protocol/yaml-library.ts loads its library in a way unknown to build.js.');
-      return followed;
-    },
-  },
-};
-
 /** Writes the joined files to a folder and tells which modules were read, and which of them are in what file. */
 async function joinInto(folder) {
   const read = new Set();
@@ -44,7 +31,7 @@ async function joinInto(folder) {
     input: Object.fromEntries(ENTRIES.map((name) => [name, join(DIST, `${name}.js`)])),
     platform: 'node',
     external: LEFT_OUT,
-    plugins: [yamlJoined, watch],
+    plugins: [requiredYaml, watch],
     onLog: (_level, { message }) => {
       throw new Error(`Joining the trainer: ${message}`);
     },
@@ -56,26 +43,6 @@ async function joinInto(folder) {
     if (lost !== undefined) throw new Error(`${lost} is in ${fileName}, from where it does not find its files.`);
   }
   return { read: [...read], kept: output.flatMap(({ moduleIds }) => moduleIds) };
-}
-
-/** Folder of the package that a module is from; null for a module of ours or of the bundler's own. */
-function packageOf(id) {
-  return /^.*\/node_modules\/(?:@[^/]+\/)?[^/]+(?=\/)/.exec(id)?.[0] ?? null;
-}
-
-function packagesOf(ids) {
-  return [...new Set(ids.map(packageOf).filter((folder) => folder !== null))].sort();
-}
-
-/** The licences of the packages, each under its name and version. */
-function noticesOf(packages) {
-  return packages.map((folder) => {
-    const { name, version } = JSON.parse(readFileSync(join(folder, 'package.json'), 'utf8'));
-    const files = readdirSync(folder).filter((file) => /^(licen[cs]e|notice|copying)/i.test(file));
-    if (files.length === 0) throw new Error(`${folder} has no licence to go along with the joined files.`);
-    const texts = files.sort().map((file) => readFileSync(join(folder, file), 'utf8').trim());
-    return `${name} ${version}\n\n${texts.join('\n\n')}\n`;
-  });
 }
 
 /** Of the compiled files, what the compiler keeps beside them: it holds a digest of every source. */
@@ -104,11 +71,17 @@ async function build() {
   const bundler = dirname(at(import.meta.resolve('rolldown/package.json')));
   try {
     const { read, kept } = await joinInto(folder);
-    const notices = noticesOf([...packagesOf(kept), bundler]);
-    writeFileSync(join(folder, 'LICENSES.txt'), notices.join(`\n${'-'.repeat(80)}\n\n`));
+    writeFileSync(join(folder, 'LICENSES.txt'), noticesOf([...packagesOf(kept), bundler]));
     const copied = join(folder, 'kernels.wasm');
     cpSync(WASM, copied);
-    const inputs = [...recordsOf(read), ...manifestsOf([...packagesOf(read), bundler]), WASM, copied, at('build.js')];
+    const inputs = [
+      ...recordsOf(read),
+      ...manifestsOf([...packagesOf(read), bundler]),
+      WASM,
+      copied,
+      at('build.js'),
+      at('../../runtime/join/libraries.js'),
+    ];
     const rows = inputs.map((file) => rowOf(folder, relative(folder, file)));
     writeFileSync(join(folder, LIST), JSON.stringify(rows));
     rmSync(JOINED, { recursive: true, force: true });

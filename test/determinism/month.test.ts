@@ -1,0 +1,21 @@
+/** The recorded month on the machine of the tests. run.js runs it on other versions of Node and on another processor. */
+import { readFileSync } from 'node:fs';
+import { fileURLToPath } from 'node:url';
+import { expect, test } from 'vitest';
+import { KINDS, readKind } from './bundles.ts';
+import { runMonth } from './month.ts';
+
+const BUNDLES = fileURLToPath(new URL('.', import.meta.url));
+const pinned: Record<string, unknown> = JSON.parse(readFileSync(new URL('pinned.json', import.meta.url), 'utf8'));
+
+test.each(KINDS)('a month of the %s kind is the pinned one, to the bit', { timeout: 120_000 }, (kind) => {
+  const { bundle, sealed } = readKind(BUNDLES, kind);
+  expect(bundle.kind).toBe(kind);
+  expect(runMonth(bundle, sealed)).toEqual(pinned[kind]);
+});
+
+test('a bundle that differs in the last bit of one weight is noticed', { timeout: 120_000 }, () => {
+  const { bundle, sealed } = readKind(BUNDLES, 'linear');
+  const other = readKind(BUNDLES, 'dense');
+  expect(runMonth(bundle, sealed)).not.toEqual(runMonth(other.bundle, other.sealed));
+});
