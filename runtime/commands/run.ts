@@ -10,7 +10,9 @@ import type { Gateway } from '../gateway.ts';
 import { createLog } from '../log.ts';
 import { keepHeapSmall } from '../memory.ts';
 import { shownBroker } from '../mqtt/connection.ts';
+import { openServiceNotice } from '../service-notice.ts';
 import { type FirstBundle, Several, type SiteJob } from '../several.ts';
+import { tellOfHang, watchThisLoop } from '../watchdog.ts';
 import { brokerOptions, gather, sitesOptions } from './options.ts';
 
 interface RunOptions extends RawSitesOptions {
@@ -55,6 +57,9 @@ async function run(options: RunOptions): Promise<void> {
   const log = createLog(options.log);
   const jobs = jobsOf(options);
   for (const { config } of jobs) makeDataFolder(nodeDisk, config.data);
+  tellOfHang(nodeDisk, options.data, log);
+  const notice = openServiceNotice(process.env, log);
+  let unwatch = async (): Promise<void> => {};
   const several = new Several(jobs, {
     ports: { clock: systemClock, disk: nodeDisk, log },
     onGateway: (gateway) => log.info(startedText(gateway)),
@@ -66,13 +71,18 @@ async function run(options: RunOptions): Promise<void> {
       if (engine.serving === null)
         log.info(`${name}no bundle yet: recording, and waiting for one from the broker or from \`load\``);
     }
+    unwatch = watchThisLoop(options.data, log);
+    notice.ready();
     await untilToldToStop();
     log.info('stopping');
+    notice.stopping();
     await several.stop();
     log.info('stopped');
   } catch (error) {
     await several.abandon();
     throw error;
+  } finally {
+    await unwatch();
   }
 }
 

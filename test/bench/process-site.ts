@@ -1,4 +1,4 @@
-/** Files of an invented site of eight signals, for a gateway process to run on: site file, key, sealed bundle. */
+/** Files of an invented site of eight signals or as many as asked, for a gateway process to run on: site file, key, sealed bundle. */
 import { createHash } from 'node:crypto';
 import { writeFileSync } from 'node:fs';
 import { join } from 'node:path';
@@ -39,9 +39,9 @@ export interface ProcessSite {
 }
 
 /** Writes the three files into a folder; `tick` as a site file says it, such as "1min" or "250ms". */
-export function writeProcessSite(folder: string, tick: string): ProcessSite {
+export function writeProcessSite(folder: string, tick: string, count = SIGNALS): ProcessSite {
   const files = { site: join(folder, 'site.yaml'), key: join(folder, 'author.pub'), bundle: join(folder, 'first.swb') };
-  const signals = Array.from({ length: SIGNALS }, (_, i) =>
+  const signals = Array.from({ length: count }, (_, i) =>
     [
       `  - name: s${i}`,
       `    topic: plant/s${i}`,
@@ -55,7 +55,7 @@ export function writeProcessSite(folder: string, tick: string): ProcessSite {
   const text = `site: bench-site\nclass: bench\ntime_zone: UTC\ntick: ${tick}\nhorizon: ${HORIZON}\nlateness: 0s\nsignals:\n${signals.join('\n')}\n`;
   const author = createKeyPair(new Uint8Array(32).fill(1));
   const site = parseSite(text, 'site.yaml');
-  const draft = draftBundle(site.tickMs, schemaHash(site));
+  const draft = draftBundle(site.tickMs, schemaHash(site), count);
   const { outputs, last } = runProbe(modelFromBundle(draft), 1, 64);
   const digest = new Uint8Array(createHash('sha256').update(outputs).digest());
   const document = encodeBundle({ ...draft, probe: { seed: 1, ticks: 64, digest, last } });
@@ -72,7 +72,7 @@ export function readingOf(signal: number, timeMs: number): string {
   return JSON.stringify({ v: Number(value.toFixed(2)), t: timeMs });
 }
 
-function draftBundle(tickMs: number, schema: Uint8Array): Bundle {
+function draftBundle(tickMs: number, schema: Uint8Array, count: number): Bundle {
   let x = 2024;
   const uniform = (): number => {
     x ^= x << 13;
@@ -83,8 +83,8 @@ function draftBundle(tickMs: number, schema: Uint8Array): Bundle {
   const F = DECAYS.length + 2 * RESONATORS.length;
   const drawn = (rows: number, cols: number, type: Tensor['type'], draw: () => number): Tensor =>
     quantiseTensor(Float64Array.from({ length: rows * cols }, draw), rows, cols, type);
-  const ones = new Uint8Array(new Float32Array(SIGNALS).fill(1).buffer);
-  const table = (cols: number, value: number): Tensor => drawn(SIGNALS, cols, 'f32', () => value);
+  const ones = new Uint8Array(new Float32Array(count).fill(1).buffer);
+  const table = (cols: number, value: number): Tensor => drawn(count, cols, 'f32', () => value);
   return {
     format: BUNDLE_FORMAT,
     arithmetic: ARITHMETIC,
@@ -95,7 +95,7 @@ function draftBundle(tickMs: number, schema: Uint8Array): Bundle {
     madeAtMs: 1_700_000_000_000,
     tickMs,
     horizon: HORIZON,
-    channels: Array.from({ length: SIGNALS }, (_, i) => ({
+    channels: Array.from({ length: count }, (_, i) => ({
       name: `s${i}`,
       role: 'signal' as const,
       unit: 'm',
@@ -111,13 +111,13 @@ function draftBundle(tickMs: number, schema: Uint8Array): Bundle {
       decays: DECAYS,
       resonators: RESONATORS,
       lags: [],
-      featureExponents: { type: 'i8', rows: SIGNALS, cols: F, scales: ones, data: new Uint8Array(SIGNALS * F) },
-      bottleneck: drawn(ORDER, SIGNALS * F, 'i8', () => 0.02 * uniform()),
-      readout: drawn(SIGNALS * BASIS, ORDER, 'i8', () => 0.05 * uniform()),
+      featureExponents: { type: 'i8', rows: count, cols: F, scales: ones, data: new Uint8Array(count * F) },
+      bottleneck: drawn(ORDER, count * F, 'i8', () => 0.02 * uniform()),
+      readout: drawn(count * BASIS, ORDER, 'i8', () => 0.05 * uniform()),
       horizonBasis: drawn(HORIZON, BASIS, 'i16', () => 0.3 * uniform()),
     },
-    seasonal: { periodTicks: 1440, table: drawn(SIGNALS, 24, 'i8', () => 0.3 * uniform()) },
-    bounds: { coverage: 0.9, radius: drawn(SIGNALS, HORIZON, 'i16', () => 0.3), rate: 0.02 },
+    seasonal: { periodTicks: 1440, table: drawn(count, 24, 'i8', () => 0.3 * uniform()) },
+    bounds: { coverage: 0.9, radius: drawn(count, HORIZON, 'i16', () => 0.3), rate: 0.02 },
     guard: { rejectSd: 10, maxTicks: 3 },
     warmupTicks: 0,
     gates: { worseRatio: 1.02, trialTicks: 100, probationTicks: 100 },
@@ -138,7 +138,7 @@ function draftBundle(tickMs: number, schema: Uint8Array): Bundle {
       mse: table(1, 0.1),
       skill: table(1, 0.1),
       coverage: table(1, 0.9),
-      verdicts: Array.from({ length: SIGNALS }, (_, i) => `s${i}: not judged, made for a bench`),
+      verdicts: Array.from({ length: count }, (_, i) => `s${i}: not judged, made for a bench`),
       hasSkill: true,
       override: null,
     },

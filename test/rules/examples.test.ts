@@ -6,7 +6,14 @@ import { fileURLToPath } from 'node:url';
 import { describe, expect, test } from 'vitest';
 
 const root = fileURLToPath(new URL('../..', import.meta.url));
-const documents = ['README.md', 'DEVELOPERS.md', 'protocol/README.md', 'runtime/README.md', 'trainer/README.md'];
+const documents = [
+  'README.md',
+  'DEVELOPERS.md',
+  'protocol/README.md',
+  'runtime/README.md',
+  'runtime/install.md',
+  'trainer/README.md',
+];
 const programs: Readonly<Record<string, string>> = {
   stillwell: join(root, 'trainer/dist/cli.js'),
   'stillwell-gateway': join(root, 'runtime/dist/cli.js'),
