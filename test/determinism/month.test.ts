@@ -14,8 +14,9 @@ test.each(KINDS)('a month of the %s kind is the pinned one, to the bit', { timeo
   expect(runMonth(bundle, sealed)).toEqual(pinned[kind]);
 });
 
-test('another model leaves none of the digests as it was', { timeout: 120_000 }, () => {
+test('another model changes all digests but that of the readings', { timeout: 120_000 }, () => {
   const { bundle, sealed } = readKind(BUNDLES, 'driven');
-  const digests = Object.entries(runMonth(bundle, sealed));
-  for (const [name, digest] of digests) expect(digest, name).not.toBe((pinned.dense as Record<string, string>)[name]);
+  const other = pinned.dense as Record<string, string>;
+  for (const [name, digest] of Object.entries(runMonth(bundle, sealed)))
+    expect(digest === other[name], name).toBe(name === 'readings');
 });
