@@ -9,6 +9,7 @@ import { Counters, type RefusedCause } from './health.ts';
 import { Aligner, type LateChange } from './ingest/align.ts';
 import { BirthFile } from './ingest/births.ts';
 import { ReadingDecoder } from './ingest/decode.ts';
+import { HeldReadings } from './ingest/held.ts';
 import { PlanKeeper, type PlanOutcome } from './ingest/plans.ts';
 import { refusedBecause } from './ingest/quality.ts';
 import { RecentTicks } from './ingest/recent.ts';
@@ -16,7 +17,7 @@ import { budgetOf, type ResolutionBudget } from './residuals/budget.ts';
 import { Journal, type JournalPosition } from './residuals/journal.ts';
 import { PlainRecord } from './residuals/plain-record.ts';
 import type { Recorded } from './residuals/recorded.ts';
-import type { Identity, Recovered } from './residuals/recover.ts';
+import { type Identity, type Recovered, replaceIdentity } from './residuals/recover.ts';
 import { openRecord, type RecordOptions, type RecordStart } from './residuals/resume.ts';
 import { Spool } from './residuals/spool.ts';
 import { eachReading, type WalRecord } from './residuals/wal.ts';
@@ -42,13 +43,14 @@ export class Engine {
   readonly plans: PlanKeeper;
   readonly watch: SignalWatch;
   readonly aligner: Aligner;
+  readonly held = new HeldReadings();
   readonly spool: Spool;
   readonly budget: ResolutionBudget;
-  readonly identity: Identity;
+  identity: Identity;
   readonly #options: EngineOptions;
   /** Null at sites without Sparkplug. */
   readonly #births: BirthFile | null;
-  readonly #recent: RecentTicks;
+  #recent: RecentTicks;
   readonly #ranges: readonly (readonly [number, number] | null)[];
   /** Of the message being read: what stands for the time of readings without one, and the latest that is believed. */
   #arrivalMs = 0;
@@ -109,11 +111,19 @@ export class Engine {
     return this.#serving ?? this.#plain;
   }
 
-  /** Takes one MQTT message in; `arrivalMs` stands for the time of readings without one. */
+  /** Takes one MQTT message in; `arrivalMs` stands for the time of readings without one; NaN: they are held. */
   message(topic: string, payload: Uint8Array, arrivalMs: number, notAfterMs: number | null): void {
     this.#arrivalMs = arrivalMs;
     this.#notAfterMs = notAfterMs;
     this.decoder.decode(topic, payload, this.#target);
+  }
+
+  /** Takes those in that waited. wallMs  of an arrival on the monotonic clock */
+  clockIsSet(wallMs: (atMs: number) => number): void {
+    if (this.held.count === 0) return;
+    this.#options.note('info', `the clock is set: ${this.held.count} readings get their times`);
+    this.#notAfterMs = null;
+    this.held.release((channel, value, atMs) => this.#reading(channel, value, wallMs(atMs)));
   }
 
   /**
@@ -140,6 +150,25 @@ export class Engine {
       ({ tick, values }) => this.#fold(tick, values, true),
       (tick) => this.#beforeTick(tick),
     );
+  }
+
+  /** Leaves out the ticks that a clock's step ahead passed over, if more than `most`: no time passed in them. */
+  passOver(nowMs: number, most: number): void {
+    const due = this.aligner.due(nowMs);
+    if (due > most) this.#jump(due);
+  }
+
+  /** Goes on at `tick`, which may lie before what was closed: a new stream of segments, a filter that starts afresh. */
+  renewAt(tick: number): void {
+    const { disk, folder } = this.#options;
+    const counts = this.#journal.leave(this.#recorded);
+    this.identity = replaceIdentity(disk, folder, this.identity);
+    this.aligner.renewAt(tick);
+    this.#recent = new RecentTicks(this.#ranges.length, RECENT_TICKS);
+    this.#plain = PlainRecord.of(this.site);
+    if (this.#serving !== null) this.#serving = this.#serving.afresh();
+    this.#journal = this.#openJournal({ number: 0, sinceKeyed: 0 }, counts);
+    this.#journal.begin(this.#recorded);
   }
 
   /** Hands the record to the disk, and closes the open segment if it is due. Call when forecasts are out. */
@@ -237,7 +266,7 @@ export class Engine {
       eachReading(record, (channel, timeMs, value) => this.aligner.replay(channel, timeMs, value));
   }
 
-  #openJournal(position: JournalPosition): Journal {
+  #openJournal(position: JournalPosition, counts?: Journal['counts']): Journal {
     const { disk, folder, gateway, site, segmentTicks } = this.#options;
     const { spool, budget } = this;
     const channelCount = this.#ranges.length;
@@ -258,6 +287,7 @@ export class Engine {
         openReadings: () => this.aligner.openReadings(),
       },
       position,
+      counts,
     );
   }
 
@@ -277,6 +307,10 @@ export class Engine {
     const cause = refusedBecause(value, this.#ranges[channel]!);
     if (cause !== null) {
       this.#refuse(channel, cause);
+      return;
+    }
+    if (Number.isNaN(timeMs)) {
+      if (!this.held.hold(channel, value)) this.#refuse(channel, 'clock-unset');
       return;
     }
     const placed = this.aligner.place(channel, timeMs, value, this.#notAfterMs, this.#onChange);
@@ -358,8 +392,7 @@ export class Engine {
       this.#turnPlain(this.#plain.afresh());
       return;
     }
-    const after = new Serving(this.#serving.checked);
-    after.plans = this.plans;
+    const after = this.#serving.afresh();
     this.#journal.turnOver(this.#serving, after);
     this.#serving = after;
   }

@@ -5,6 +5,7 @@
 import { type HealthStatus, topicsOf } from '@stillwell/protocol';
 import { BundleKeeper } from './bundle/change.ts';
 import { BundleIntake } from './bundle/intake.ts';
+import { ClockWatch } from './clock-watch.ts';
 import type { GatewayConfig } from './config.ts';
 import { Engine } from './engine.ts';
 import { type Connection, type ConnectionEvent, type IncomingPacket, openConnection } from './mqtt/connection.ts';
@@ -15,9 +16,8 @@ import { type QuestionPorts, Questions } from './questions/questions.ts';
 import { GroupSync } from './residuals/group-sync.ts';
 import { takeReceipt } from './residuals/receipts.ts';
 import { Shipper } from './residuals/ship.ts';
+import { CLOCK_UNSET_MS, SteadyClock } from './steady-clock.ts';
 
-/** A wall clock before 2020 was never set: only the readings' own times can then be believed. */
-const CLOCK_UNSET_MS = Date.UTC(2020, 0, 1);
 /** The loop comes round at least so often, for whatever is due. */
 const PULSE_MS = 500;
 /** What nobody waits for, readings of QoS 0 and closed ticks, is synced so often. */
@@ -38,6 +38,7 @@ export class Gateway {
   readonly engine: Engine;
   readonly #config: GatewayConfig;
   readonly #ports: GatewayPorts;
+  readonly #clockWatch: ClockWatch;
   readonly #intake: BundleIntake;
   readonly #topics: ReturnType<typeof topicsOf>;
   readonly #shipper: Shipper;
@@ -57,9 +58,10 @@ export class Gateway {
   /** Opens the data folder and starts. throws  RuntimeError 'data-folder' */
   constructor(config: GatewayConfig, ports: GatewayPorts) {
     const { site, gateway, data, segmentTicks, spoolBytes } = config;
-    const { clock, disk, log } = ports;
+    const { disk, log } = ports;
+    const clock = new SteadyClock(ports.clock);
     this.#config = config;
-    this.#ports = ports;
+    this.#ports = { ...ports, clock };
     this.#topics = topicsOf(site.root, site.site);
     const keeper = new BundleKeeper(disk, data, site, config.trusted);
     for (const fault of keeper.faults) log.warn(`bundle on disk not usable: ${fault}`);
@@ -76,17 +78,18 @@ export class Gateway {
       },
       keeper,
     );
+    this.#clockWatch = new ClockWatch(clock, this.engine, site.tickMs, (text) => log.warn(text));
     this.#intake = new BundleIntake({
       keeper,
       engine: this.engine,
-      ports,
+      ports: this.#ports,
       folder: data,
       onChange: () => this.#onBundleChange(),
     });
     this.#holdUntil = clock.monotonic() + SETTLE_AT_MOST_MS;
     this.#groupSync = new GroupSync({ clock, sync: async () => this.engine.journal.syncSoon() });
     this.#connection = this.#connect();
-    this.#publisher = new Publisher(config, ports, this.#connection, this.#topics);
+    this.#publisher = new Publisher(config, this.#ports, this.#connection, this.#topics);
     this.#questions = this.#openQuestions();
     this.#shipper = new Shipper({
       spool: this.engine.spool,
@@ -223,10 +226,12 @@ export class Gateway {
 
   #reading(topic: string, payload: Uint8Array): void {
     const { site } = this.#config;
-    const wall = this.#ports.clock.wall();
+    const { clock } = this.#ports;
+    const wall = clock.wall();
     const isSet = wall >= CLOCK_UNSET_MS;
-    const notAfterMs = this.#config.clock === 'wall' && isSet ? wall + site.latenessMs + site.tickMs : null;
-    this.engine.message(topic, payload, wall, notAfterMs);
+    const notAfterMs = this.#config.clock === 'wall' ? wall + site.latenessMs + site.tickMs : null;
+    this.engine.held.nowMs = clock.monotonic();
+    this.engine.message(topic, payload, isSet ? wall : Number.NaN, isSet ? notAfterMs : null);
     if (this.#config.clock === 'readings' || !isSet) this.#closeTicks();
   }
 
@@ -252,6 +257,7 @@ export class Gateway {
   /** The loop: what is due now, then sleep until the next tick closes. */
   #pulse(): void {
     const { clock } = this.#ports;
+    this.#watchClock();
     this.#closeTicks();
     const now = clock.monotonic();
     if (this.engine.journal.isDirty && this.#groupSync.ageMs >= SYNC_MS) this.#groupSync.now();
@@ -265,6 +271,16 @@ export class Gateway {
     this.#shipper.poke();
     if (this.#publisher.isHealthDue()) this.#sayHealth();
     this.#cancelPulse = clock.after(this.#untilNextMs(), () => this.#guard(() => this.#pulse()));
+  }
+
+  /** Before ticks close: a clock that stepped must neither close what was jumped nor leave us deaf. */
+  #watchClock(): void {
+    const { clock } = this.#ports;
+    const wall = clock.wall();
+    if (wall < CLOCK_UNSET_MS) return;
+    const offset = wall - clock.monotonic();
+    this.engine.clockIsSet((atMs) => atMs + offset);
+    if (this.#config.clock === 'wall' && this.#clockWatch.check()) this.#sayHealth();
   }
 
   #untilNextMs(): number {
@@ -366,7 +382,12 @@ export class Gateway {
       lastChange: this.#intake.lastChange,
       engine: this.engine,
       ship: this.#shipper.counts,
-      counts: { questions: this.#questions.answered, questions_refused: this.#questions.refused },
+      clockDoubt: this.#config.clock === 'wall' ? this.#clockWatch.doubt : null,
+      counts: {
+        clock: this.#clockWatch.counts,
+        questions: this.#questions.answered,
+        questions_refused: this.#questions.refused,
+      },
     };
   }
 }

@@ -88,6 +88,13 @@ export class Serving implements Recorded {
     this.upper = new Float64Array(this.median.length);
   }
 
+  /** The same bundle with a filter that starts anew. */
+  afresh(): Serving {
+    const after = new Serving(this.checked);
+    after.plans = this.plans;
+    return after;
+  }
+
   /** Last tick folded in; -1 before the first. */
   get tick(): number {
     return this.state.tick;

@@ -116,6 +116,16 @@ export class Aligner {
     for (const known of this.#ticks.keys()) if (known < tick) this.#ticks.delete(known);
   }
 
+  /** Forgets every reading and goes on at `tick`, wherever that lies. */
+  renewAt(tick: number): void {
+    this.#ticks.clear();
+    this.#counters.fill(Number.NaN);
+    this.lastReadingMs.fill(Number.NaN);
+    this.#newestMs = Number.NEGATIVE_INFINITY;
+    this.#suspectMs = Number.NaN;
+    this.startAt(tick);
+  }
+
   /** Passes over the next `count` ticks, which are then closed without a value. */
   skip(count: number): void {
     this.startAt((this.#nextTick ?? this.#firstTick()) + count);

@@ -36,6 +36,8 @@ export interface HealthReport {
   readonly nowMs: number;
   /** Null where ticks close by the readings' own time; otherwise ms. */
   readonly wallTickMs: number | null;
+  /** Why the wall clock is not sure; null where it is, or is not asked. */
+  readonly clockDoubt?: string | null;
   /** How long the message holds without a new one. */
   readonly holdsMs: number;
   readonly status: HealthStatus;
@@ -169,11 +171,15 @@ function judgeGateway(report: HealthReport): Judged {
 }
 
 /** By the wall clock no tick closes before its end: one closed ahead of now says that the clock was set back. */
-function judgeClock({ engine, nowMs, wallTickMs }: HealthReport): Judged | null {
+function judgeClock({ engine, nowMs, wallTickMs, clockDoubt = null }: HealthReport): Judged | null {
+  if (clockDoubt !== null) return { quality: 'M', qualityReason: clockDoubt };
   const { nextTick } = engine.aligner;
   if (wallTickMs === null || nextTick === null) return null;
   const closedToMs = nextTick * wallTickMs;
   if (closedToMs - nowMs < CLOCK_AHEAD_TICKS * wallTickMs) return null;
   const until = new Date(closedToMs).toISOString();
-  return { quality: 'M', qualityReason: `the clock was set back: nothing is taken or forecast before ${until}` };
+  return {
+    quality: 'M',
+    qualityReason: `the clock was set back: nothing is forecast before ${until}, or before the record starts anew`,
+  };
 }

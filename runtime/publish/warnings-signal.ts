@@ -156,8 +156,9 @@ export class SignalWarnings {
     if (open === undefined) return;
     const { horizon } = this.#site;
     const away = tick - open.warning.seenTick;
-    if (away <= horizon + renewTicks(horizon)) return;
-    this.#end(limit, side, value, open.warning, 'expired', `nothing was forecast for ${away} ticks`);
+    if (away >= 0 && away <= horizon + renewTicks(horizon)) return;
+    const reason = away < 0 ? 'the clock was set back' : `nothing was forecast for ${away} ticks`;
+    this.#end(limit, side, value, open.warning, 'expired', reason);
   }
 
   #end(

@@ -14,6 +14,7 @@ import { type Disk, replaceOn, sweepParts } from '../disk.ts';
 import type { LateChange, OpenReadings } from '../ingest/align.ts';
 import type { ResolutionBudget } from './budget.ts';
 import { type Checkpoint, encodeCheckpoint } from './checkpoint.ts';
+import { type JournalCounts, NOTHING_COUNTED } from './journal-counts.ts';
 import type { Recorded } from './recorded.ts';
 import type { Spool } from './spool.ts';
 import { startWal, Wal } from './wal.ts';
@@ -50,16 +51,6 @@ export interface KeptJournal {
 export interface JournalPosition {
   readonly number: number;
   readonly sinceKeyed: number;
-}
-
-/** Counted since the start. */
-export interface JournalCounts {
-  readonly closed: number;
-  readonly shedSegments: number;
-  readonly shedBytes: number;
-  readonly shedTicks: number;
-  /** Segments lost since the disk took nothing for too long. */
-  readonly lost: number;
 }
 
 /** A segment closes by size well before the most that one may hold … */
@@ -100,7 +91,7 @@ export function journalPath(folder: string, number: number): string {
 export class Journal {
   readonly #options: JournalOptions;
   readonly #streamName: string;
-  readonly #counts = { closed: 0, shedSegments: 0, shedBytes: 0, shedTicks: 0, lost: 0 };
+  readonly #counts: { -readonly [Count in keyof JournalCounts]: number };
   /** Journal files that still hold wanted ticks, oldest first. */
   readonly #kept: KeptJournal[] = [];
   #unsaved: { number: number; bytes: Uint8Array }[] = [];
@@ -113,8 +104,10 @@ export class Journal {
   #wal: Wal | null = null;
   #fault: string | null = null;
 
-  constructor(options: JournalOptions, position: JournalPosition) {
+  /** counts  of the journal before this one in the same run, counted on */
+  constructor(options: JournalOptions, position: JournalPosition, counts: JournalCounts = NOTHING_COUNTED) {
     this.#options = options;
+    this.#counts = { ...counts };
     this.#streamName = Buffer.from(options.stream).toString('hex');
     this.#number = position.number;
     this.#sinceKeyed = position.sinceKeyed;
@@ -239,6 +232,13 @@ export class Journal {
   /** Whether all that was written down is on disk; true as well where the disk takes nothing, see `fault`. */
   get isDurable(): boolean {
     return this.#wal?.isDurable ?? true;
+  }
+
+  /** Closes the open segment for a journal of another stream to follow; returns the counts to count on. */
+  leave(recorded: Recorded): JournalCounts {
+    this.turnOver(recorded, recorded);
+    this.stop();
+    return { ...this.#counts, lost: this.#counts.lost + this.#unsaved.length };
   }
 
   /** Clean stop. */

@@ -58,6 +58,18 @@ export function renewIdentity(disk: Disk, folder: string, identity: Identity): I
   return renewed;
 }
 
+/** The same in the midst of a run, where the disk may fail: the next start then finds another stream's checkpoint and renews. */
+export function replaceIdentity(disk: Disk, folder: string, identity: Identity): Identity {
+  const renewed = { ...identity, stream: new Uint8Array(randomBytes(8)) };
+  try {
+    for (const name of disk.list(journalFolder(folder))) disk.remove(join(journalFolder(folder), name));
+    writeIdentity(disk, folder, renewed);
+  } catch {
+    // Said by the journal, which cannot write either.
+  }
+  return renewed;
+}
+
 /**
  * Reads checkpoint and journal files.
  *

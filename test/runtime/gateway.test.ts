@@ -78,6 +78,9 @@ function startGateway(
   const take = (text: string): void => void there.log.push(text);
   const log: Log = { debug: () => {}, info: take, warn: take, error: take };
   const broker = { url: there.broker.url, protocol: 'auto' as const, username: null, password: null, tls: {} };
+  // Where the wall clock is turned on by hand, the monotonic one passes with it.
+  const begun = wall === systemClock.wall ? null : wall();
+  const monotonic = (): number => systemClock.monotonic() + (begun === null ? 0 : wall() - begun);
   const gateway = new Gateway(
     {
       site,
@@ -91,7 +94,14 @@ function startGateway(
       healthSeconds: 60,
       ...extra,
     },
-    { clock: { ...systemClock, wall }, disk: nodeDisk, log, stream: STREAM, firstRetryMs: 60, willDelaySeconds: 0 },
+    {
+      clock: { ...systemClock, wall, monotonic },
+      disk: nodeDisk,
+      log,
+      stream: STREAM,
+      firstRetryMs: 60,
+      willDelaySeconds: 0,
+    },
   );
   open.push({ stop: () => gateway.abandon() });
   return gateway;
