@@ -8,6 +8,7 @@ import { BundleIntake } from './bundle/intake.ts';
 import { ClockWatch } from './clock-watch.ts';
 import type { GatewayConfig } from './config.ts';
 import { Engine } from './engine.ts';
+import { TAKE_OVERS_TO_A_FIGHT } from './mqtt/back-off.ts';
 import { type Connection, type ConnectionEvent, type IncomingPacket, openConnection } from './mqtt/connection.ts';
 import { dispatch, filtersOf } from './mqtt/subscriptions.ts';
 import type { GatewayPorts } from './ports.ts';
@@ -53,6 +54,8 @@ export class Gateway {
   #lookedAt = 0;
   #retriedAt = 0;
   #saidFault: string | null = null;
+  #takeOvers = 0;
+  #fight: string | null = null;
   #isStopping = false;
 
   /** Opens the data folder and starts. throws  RuntimeError 'data-folder' */
@@ -188,6 +191,7 @@ export class Gateway {
       this.#holdUntil = Math.min(this.#holdUntil, clock.monotonic() + SETTLE_MS);
       this.#shipper.connected();
       this.#publisher.connected();
+      this.#fight = null;
       this.#sayHealth();
     } else if (event.kind === 'lost') {
       this.#shipper.lost();
@@ -195,9 +199,12 @@ export class Gateway {
       log.warn(`broker: ${event.reason}; next attempt in ${(event.retryMs / 1000).toFixed(1)} s`);
     } else if (event.kind === 'refused-subscription') {
       log.warn(`the broker refused to subscribe ${event.filter}: ${event.reason}`);
-    } else if (event.kind === 'taken-over') {
+    } else {
       log.warn(`another client took this gateway's place at the broker (${event.count})`);
-    } else log.error(event.reason);
+      this.#takeOvers++;
+      if (event.count >= TAKE_OVERS_TO_A_FIGHT) this.#fight = "another client uses this gateway's client id";
+      this.#sayHealth();
+    }
   }
 
   /** The promise, if any, resolves when a message of QoS 1 may be acknowledged. */
@@ -226,11 +233,10 @@ export class Gateway {
 
   #reading(topic: string, payload: Uint8Array): void {
     const { site } = this.#config;
-    const { clock } = this.#ports;
-    const wall = clock.wall();
+    const wall = this.#ports.clock.wall();
     const isSet = wall >= CLOCK_UNSET_MS;
     const notAfterMs = this.#config.clock === 'wall' ? wall + site.latenessMs + site.tickMs : null;
-    this.engine.held.nowMs = clock.monotonic();
+    this.engine.held.nowMs = this.#ports.clock.monotonic();
     this.engine.message(topic, payload, isSet ? wall : Number.NaN, isSet ? notAfterMs : null);
     if (this.#config.clock === 'readings' || !isSet) this.#closeTicks();
   }
@@ -382,9 +388,10 @@ export class Gateway {
       lastChange: this.#intake.lastChange,
       engine: this.engine,
       ship: this.#shipper.counts,
-      clockDoubt: this.#config.clock === 'wall' ? this.#clockWatch.doubt : null,
+      doubt: this.#fight ?? (this.#config.clock === 'wall' ? this.#clockWatch.doubt : null),
       counts: {
         clock: this.#clockWatch.counts,
+        take_overs: this.#takeOvers,
         questions: this.#questions.answered,
         questions_refused: this.#questions.refused,
       },

@@ -9,7 +9,7 @@
 import { type IClientOptions, MqttClient, UniqueMessageIdProvider } from 'mqtt';
 import { RuntimeError } from '../errors.ts';
 import { Acknowledgements } from './acknowledge.ts';
-import { backOffMs } from './back-off.ts';
+import { backOffMs, TAKE_OVERS_TO_A_FIGHT, truceMs } from './back-off.ts';
 import { openStream, parseBrokerUrl } from './stream.ts';
 import { asBuffer, plainReason, publishOptions, willOptions } from './translate.ts';
 import type { Connection, ConnectionOptions, Outgoing } from './types.ts';
@@ -25,7 +25,6 @@ const PACKET_OVERHEAD_BYTES = 128;
 const OWN_WINDOW = 16;
 /** Messages that an MQTT 5 broker may leave unacknowledged with us; without a word it may be 65,535, all counted as queued. */
 const RECEIVE_MAXIMUM = 100;
-const TAKE_OVERS_BEFORE_STOP = 3;
 /** Two that fight for a client id meet within minutes; what came by longer ago is no fight. */
 const TAKE_OVERS_WITHIN_MS = 3_600_000;
 /** A connection that held so long was a good one. */
@@ -62,6 +61,8 @@ class LastingConnection implements Connection {
   #shortLived = 0;
   #takeOvers = 0;
   #takenOverAt = 0;
+  /** The present client's loss was a take-over. */
+  #isTakenOver = false;
   #retry: NodeJS.Timeout | null = null;
   #ended = false;
 
@@ -295,7 +296,10 @@ class LastingConnection implements Connection {
       return;
     }
     const { firstMs = 5000, capMs = 60_000 } = this.#options.backOff ?? {};
-    const retryMs = backOffMs(this.#failures, { firstMs, capMs }, (this.#options.random ?? Math.random)());
+    const random = (this.#options.random ?? Math.random)();
+    const truce = this.#isTakenOver ? truceMs(this.#takeOvers, random) : 0;
+    this.#isTakenOver = false;
+    const retryMs = Math.max(truce, backOffMs(this.#failures, { firstMs, capMs }, random));
     this.#failures++;
     const silentFallBack =
       !answered && this.#version === 4 && this.#options.protocol === 'auto' && this.#failures === 1;
@@ -305,11 +309,14 @@ class LastingConnection implements Connection {
       for (const waiter of this.#firstWaiters) waiter.reject(error);
       this.#firstWaiters.clear();
     }
+    const { clientId } = this.#options;
+    const isShort = this.#shortLived >= TAKE_OVERS_TO_A_FIGHT;
     const hint =
-      this.#shortLived < TAKE_OVERS_BEFORE_STOP
-        ? ''
-        : `, ${this.#shortLived} times in a row just after connecting; does another client use the client id ` +
-          `"${this.#options.clientId}"?`;
+      truce > 0
+        ? `: another client uses the client id "${clientId}"; stop one of the two`
+        : isShort
+          ? `, ${this.#shortLived} times in a row just after connecting; does another client use the client id "${clientId}"?`
+          : '';
     this.#options.onState?.({ kind: 'lost', reason: reason + hint, retryMs });
     this.#retry = setTimeout(() => this.#attempt(), retryMs);
   }
@@ -318,10 +325,8 @@ class LastingConnection implements Connection {
     const now = performance.now();
     this.#takeOvers = now - this.#takenOverAt > TAKE_OVERS_WITHIN_MS ? 1 : this.#takeOvers + 1;
     this.#takenOverAt = now;
+    this.#isTakenOver = true;
     this.#options.onState?.({ kind: 'taken-over', count: this.#takeOvers });
-    if (this.#takeOvers < TAKE_OVERS_BEFORE_STOP) return;
-    const reason = `another client uses the client id "${this.#options.clientId}" on ${this.#where()}; stop one of the two`;
-    void this.end(true).then(() => this.#options.onState?.({ kind: 'stopped', reason }));
   }
 
   /** Asks for the filters one by one in one packet each, so that a refused one does not hide the others. */

@@ -38,8 +38,7 @@ export type ConnectionEvent =
   | { readonly kind: 'connected'; readonly protocol: 4 | 5; readonly sessionPresent: boolean }
   | { readonly kind: 'lost'; readonly reason: string; readonly retryMs: number }
   | { readonly kind: 'refused-subscription'; readonly filter: string; readonly reason: string }
-  | { readonly kind: 'taken-over'; readonly count: number }
-  | { readonly kind: 'stopped'; readonly reason: string };
+  | { readonly kind: 'taken-over'; readonly count: number };
 
 /** How to connect, and who hears of it. */
 export interface ConnectionOptions {

@@ -36,8 +36,8 @@ export interface HealthReport {
   readonly nowMs: number;
   /** Null where ticks close by the readings' own time; otherwise ms. */
   readonly wallTickMs: number | null;
-  /** Why the wall clock is not sure; null where it is, or is not asked. */
-  readonly clockDoubt?: string | null;
+  /** Why the gateway itself needs somebody to look after it, such as a clock that is not sure; null: it does not. */
+  readonly doubt?: string | null;
   /** How long the message holds without a new one. */
   readonly holdsMs: number;
   readonly status: HealthStatus;
@@ -171,8 +171,8 @@ function judgeGateway(report: HealthReport): Judged {
 }
 
 /** By the wall clock no tick closes before its end: one closed ahead of now says that the clock was set back. */
-function judgeClock({ engine, nowMs, wallTickMs, clockDoubt = null }: HealthReport): Judged | null {
-  if (clockDoubt !== null) return { quality: 'M', qualityReason: clockDoubt };
+function judgeClock({ engine, nowMs, wallTickMs, doubt = null }: HealthReport): Judged | null {
+  if (doubt !== null) return { quality: 'M', qualityReason: doubt };
   const { nextTick } = engine.aligner;
   if (wallTickMs === null || nextTick === null) return null;
   const closedToMs = nextTick * wallTickMs;

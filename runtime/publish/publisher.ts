@@ -127,7 +127,7 @@ export class Publisher {
     readonly lastChange: BundleChange | null;
     readonly engine: Engine;
     readonly ship: ShipCounts;
-    readonly clockDoubt: string | null;
+    readonly doubt: string | null;
     readonly counts: NonNullable<HealthReport['counts']>;
   }): Promise<void> {
     const now = this.#ports.clock.monotonic();

@@ -132,7 +132,5 @@ function connectionText(event: Parameters<NonNullable<Parameters<typeof connectB
       return { state: event.kind, detail: `${event.filter}: ${event.reason}` };
     case 'taken-over':
       return { state: event.kind, detail: `by another client, ${event.count} times` };
-    case 'stopped':
-      return { state: event.kind, detail: event.reason };
   }
 }
