@@ -33,9 +33,10 @@ export function segmentFacts(bytes: Uint8Array) {
 /** The facts as text for a terminal. */
 export function segmentText(facts: ReturnType<typeof segmentFacts>): string {
   const perValue = (facts.bytes * 8) / Math.max(1, facts.ticks * facts.channels);
+  const whose = facts.bundle === null ? 'layout and last values' : "the filter's state";
   const start =
     facts.start === 'keyed'
-      ? `keyed: carries the filter's state (${bytesText(facts.startStateBytes ?? 0)} unpacked), decodes by itself`
+      ? `keyed: carries ${whose} (${bytesText(facts.startStateBytes ?? 0)} unpacked), decodes by itself`
       : `chained: starts where segment ${facts.number - 1} of the stream ended`;
   const coarse = facts.coarseness.flatMap((power, c) =>
     power > 0 ? [`channel ${c} in ${2 ** power} steps at a time`] : [],
@@ -44,8 +45,8 @@ export function segmentText(facts: ReturnType<typeof segmentFacts>): string {
   return [
     `Segment ${facts.number} of site ${facts.site}, gateway ${facts.gateway}, stream ${facts.stream}`,
     `  hash        ${facts.hash}`,
-    `  bundle      ${facts.bundle ?? 'none'}`,
-    `  ticks       ${facts.ticks} from tick ${facts.firstTick} (tick length stands in the bundle)`,
+    `  bundle      ${facts.bundle ?? 'none: coded against the last values'}`,
+    `  ticks       ${facts.ticks} from tick ${facts.firstTick} (tick length stands in ${facts.bundle === null ? 'its start state' : 'the bundle'})`,
     `  channels    ${facts.channels}, ${facts.signals} of them signals`,
     `  resolution  ${resolution}`,
     `  start       ${start}`,

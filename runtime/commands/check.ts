@@ -1,16 +1,16 @@
 /** `stillwell-gateway check`: everything a start needs, tried in order, and a while of listening to the plant. */
 import { checkTopicFilter, toHex, topicsOf } from '@stillwell/protocol';
 import { Command } from 'commander';
-import { checkNamed } from '../bundle/load.ts';
-import { type GatewayConfig, type RawOptions, readConfig, readGiven } from '../config.ts';
+import { checkNamed, siteOfBundle } from '../bundle/load.ts';
+import { checkSites, type GatewayConfig, type RawSitesOptions, readConfig, readGiven } from '../config.ts';
 import { nodeDisk } from '../disk.ts';
 import { RuntimeError } from '../errors.ts';
 import { HeardSite } from '../ingest/heard.ts';
 import { type Connection, openConnection, shownBroker } from '../mqtt/connection.ts';
 import { heardData, heardLines } from './heard-text.ts';
-import { brokerOptions, gather, siteOptions } from './options.ts';
+import { brokerOptions, gather, sitesOptions } from './options.ts';
 
-interface CheckOptions extends Omit<RawOptions, 'data'> {
+interface CheckOptions extends Omit<RawSitesOptions, 'data'> {
   readonly bundle?: string;
   readonly seconds: string;
   readonly around: readonly string[];
@@ -25,7 +25,7 @@ export function checkCommand(): Command {
   const command = new Command('check').description(
     'Checks site file, keys, bundle and broker, then listens and says signal by signal what came, what was refused and why, and what came that no signal takes. Changes nothing.',
   );
-  return brokerOptions(siteOptions(command))
+  return brokerOptions(sitesOptions(command))
     .option('--bundle <file>', 'sealed bundle to check as well')
     .option('--seconds <n>', 'how long to listen', '10')
     .option(
@@ -34,7 +34,7 @@ export function checkCommand(): Command {
       gather,
       [],
     )
-    .option('--json', 'one JSON object')
+    .option('--json', 'one JSON object, of several sites one a line')
     .addHelpText(
       'after',
       '\nExample:\n  stillwell-gateway check --site site.yaml --trust author.pub --broker mqtt://localhost:1883 --around "plant/#"',
@@ -47,7 +47,23 @@ async function check(options: CheckOptions): Promise<void> {
   if (!(seconds >= 0 && seconds <= 3600))
     throw new RuntimeError('options', `--seconds: expected a whole number from 0 to 3600, got "${options.seconds}"`);
   for (const filter of options.around) checkAround(filter);
-  const config = readConfig(nodeDisk, { ...options, data: '' });
+  const configs = options.site.map((site) => readConfig(nodeDisk, { ...options, site, data: '' }));
+  checkSites(
+    configs.map(({ site }) => site),
+    options.site,
+  );
+  const bundle = options.bundle === undefined ? null : bundleSummary(options.bundle, configs);
+  // One after the other: each has the terminal to itself.
+  for (const config of configs)
+    await checkSite(config, options, seconds, bundle?.site === config.site ? bundle.summary : null);
+}
+
+async function checkSite(
+  config: GatewayConfig,
+  options: CheckOptions,
+  seconds: number,
+  bundle: { readonly digest: string; readonly sequence: number } | null,
+): Promise<void> {
   const { site } = config;
   const say = (text: string): void => {
     if (!options.json) process.stdout.write(`${text}\n`);
@@ -56,7 +72,6 @@ async function check(options: CheckOptions): Promise<void> {
     `site      ${site.site}: ${site.signals.length} signals, ${site.inputs.length} inputs, tick ${site.tickMs / 1000} s`,
   );
   say(`trust     ${config.trusted.length} author key${config.trusted.length === 1 ? '' : 's'}`);
-  const bundle = options.bundle === undefined ? null : bundleSummary(options.bundle, config);
   if (bundle !== null) say(`bundle    ${bundle.digest.slice(0, 16)}…, sequence ${bundle.sequence}: every check passed`);
   const heard = new HeardSite(site);
   const screen = process.stdout.isTTY && !options.json ? new Screen() : null;
@@ -73,10 +88,12 @@ function checkAround(filter: string): void {
   }
 }
 
-function bundleSummary(path: string, config: GatewayConfig): { digest: string; sequence: number } {
+/** Judges the bundle for the one of the sites that it is for. */
+function bundleSummary(path: string, configs: readonly GatewayConfig[]) {
   const sealed = readGiven(nodeDisk, path, 'bundle');
-  const { digest, sequence } = checkNamed(path, sealed, config.site, config.trusted);
-  return { digest: toHex(digest), sequence };
+  const { site, trusted } = configs[siteOfBundle(path, sealed, configs)]!;
+  const { digest, sequence } = checkNamed(path, sealed, site, trusted);
+  return { site, summary: { digest: toHex(digest), sequence } };
 }
 
 async function listen(

@@ -24,10 +24,3 @@ export function sitesOptions(command: Command): Command {
     .option('--site <file>', 'site file; may be repeated, for several sites in one process', gather, [])
     .option('--trust <file>', 'public author key whose bundles are believed; may be repeated', gather, []);
 }
-
-/** Which site, and whose bundles are believed. */
-export function siteOptions(command: Command): Command {
-  return command
-    .requiredOption('--site <file>', 'site file')
-    .option('--trust <file>', 'public author key whose bundles are believed; may be repeated', gather, []);
-}

@@ -38,6 +38,13 @@ function configOf(site: Site, url: string, data: string): GatewayConfig {
   };
 }
 
+function linesOf<T>(out: string): T[] {
+  return out
+    .trim()
+    .split('\n')
+    .map((line) => JSON.parse(line) as T);
+}
+
 /** A disk that is full for one folder while `isFull` says so. */
 function fullFor(folder: string, isFull: () => boolean): Disk {
   return {
@@ -168,6 +175,13 @@ test('one process serves two sites: bundles find theirs, status tells of both, a
     /"elsewhere"/,
     /expected one for marsh-lane, reed-bank/,
   ]);
+  const checkBoth = `stillwell-gateway check ${two.replace(' --data data', '')} --broker ${broker.url} --seconds 0 --json`;
+  const checked = await run(`${checkBoth} --bundle b.swb`, folder);
+  const found = linesOf<{ site: string; bundle: { sequence: number } | null }>(checked.out);
+  expect(found.map(({ site, bundle }) => [site, bundle?.sequence])).toEqual([
+    ['marsh-lane', undefined],
+    ['reed-bank', 1],
+  ]);
   const child = spawn(process.execPath, [COMMAND, ...start.split(' ').slice(1), '--bundle', 'b.swb'], { cwd: folder });
   onTestFinished(() => void child.kill('SIGKILL'));
   let out = '';
@@ -185,10 +199,7 @@ test('one process serves two sites: bundles find theirs, status tells of both, a
   child.kill('SIGTERM');
   expect(await gone).toBe(0);
   const status = await run('stillwell-gateway status --data data --json', folder);
-  const sites = status.out
-    .trim()
-    .split('\n')
-    .map((line) => JSON.parse(line) as { running: boolean; health: HealthMessage });
+  const sites = linesOf<{ running: boolean; health: HealthMessage }>(status.out);
   expect(sites.map(({ running, health }) => [health.site, health.status, health.sequence, running])).toEqual([
     ['marsh-lane', 'stopped', 1, false],
     ['reed-bank', 'stopped', 1, false],
