@@ -18,19 +18,43 @@ function lockPath(folder: string): string {
   return join(folder, 'lock');
 }
 
+/** The file system as far as a lock needs it; passed in by tests. */
+export interface LockFiles {
+  /** Creates a file that must not exist yet. */
+  create(path: string, text: string): void;
+  remove(path: string): void;
+}
+
+const nodeFiles: LockFiles = {
+  create(path, text) {
+    const descriptor = openSync(path, 'wx', 0o644);
+    writeSync(descriptor, text);
+    closeSync(descriptor);
+  },
+  remove: (path) => rmSync(path, { force: true }),
+};
+
 /**
- * Takes the lock and gives the function that lets it go.
+ * Takes the lock and gives the function that lets it go. On a read-only file system there is none to take: nobody writes
+ * there, so that two gateways could only fight for their client id.
  *
  * throws  RuntimeError 'locked' naming the process that has it
  */
-export function takeLock(folder: string): () => void {
+export function takeLock(folder: string, files: LockFiles = nodeFiles): () => void {
+  try {
+    return takeWritableLock(folder, files);
+  } catch (error) {
+    if ((error as { code?: unknown }).code === 'EROFS') return () => {};
+    throw error;
+  }
+}
+
+function takeWritableLock(folder: string, files: LockFiles): () => void {
   const path = lockPath(folder);
   for (let attempt = 0; attempt < 2; attempt++) {
     try {
-      const descriptor = openSync(path, 'wx', 0o644);
-      writeSync(descriptor, `${JSON.stringify({ pid: process.pid, started: startOf(process.pid) })}\n`);
-      closeSync(descriptor);
-      return () => rmSync(path, { force: true });
+      files.create(path, `${JSON.stringify({ pid: process.pid, started: startOf(process.pid) })}\n`);
+      return () => files.remove(path);
     } catch (error) {
       if ((error as { code?: unknown }).code !== 'EEXIST') throw error;
     }
@@ -41,7 +65,7 @@ export function takeLock(folder: string): () => void {
         `data folder ${folder}: process ${holder} uses it already; stop that gateway, or give this one a folder of its own`,
         { details: { pid: holder } },
       );
-    rmSync(path, { force: true });
+    files.remove(path);
   }
   throw new RuntimeError('locked', `data folder ${folder}: another process takes the lock at this moment; try again`);
 }

@@ -3,7 +3,8 @@ import { Command } from 'commander';
 import { checkNamed, siteOfBundle } from '../bundle/load.ts';
 import { holdsBundle } from '../bundle/slots.ts';
 import { systemClock } from '../clock.ts';
-import { makeDataFolder, type RawSitesOptions, readConfigs, readGiven } from '../config.ts';
+import { type RawSitesOptions, readConfigs, readGiven } from '../config.ts';
+import { openDataFolder } from '../data-folder.ts';
 import { nodeDisk } from '../disk.ts';
 import { RuntimeError } from '../errors.ts';
 import type { Gateway } from '../gateway.ts';
@@ -56,7 +57,10 @@ export function runCommand(): Command {
 async function run(options: RunOptions): Promise<void> {
   const log = createLog(options.log);
   const jobs = jobsOf(options);
-  for (const { config } of jobs) makeDataFolder(nodeDisk, config.data);
+  for (const { config } of jobs) {
+    const warning = openDataFolder(nodeDisk, config.data);
+    if (warning !== null) log.error(warning);
+  }
   tellOfHang(nodeDisk, options.data, log);
   const notice = openServiceNotice(process.env, log);
   let unwatch = async (): Promise<void> => {};
