@@ -37,6 +37,8 @@ const BATCH = 64;
 const MAX_QUEUE_BYTES = 64 * 1024 * 1024;
 /** What an arrival takes in memory beside its bytes, about: a flood of empty messages must meet the limit too. */
 const ARRIVAL_BYTES = 512;
+/** So long after a batch nothing is decoded: a round trip later the next one may be here. */
+const LULL_MS = 100;
 /** After a failed decoding, the store is given so long before all that waits is tried again. */
 const RETRY_MS = 60_000;
 
@@ -48,6 +50,8 @@ export class Collector {
   #queue: Arrival[] = [];
   #queueBytes = 0;
   #dropped = 0;
+  /** Committed and receipted, to be decoded when nothing is left to commit. */
+  #undecoded: SegmentName[] = [];
   /** When all that waits is to be tried again; null while nothing has failed. */
   #retryAtMs: number | null = null;
   /** Receipts that went out and are not marked so in the store yet. */
@@ -121,7 +125,19 @@ export class Collector {
     if (this.#isPumping) return;
     this.#isPumping = true;
     this.#pump = this.#pump.then(async () => {
-      while (this.#queue.length > 0) await this.#takeBatch();
+      // Receipts first: a gateway that drains an outage waits for them, and decoding writes for each segment.
+      let isLull = false;
+      while (this.#queue.length > 0 || this.#undecoded.length > 0) {
+        if (this.#queue.length > 0) {
+          await this.#takeBatch();
+          isLull = false;
+        } else if (isLull) {
+          await this.#decode(this.#undecoded.shift()!);
+        } else {
+          await new Promise((resolve) => setTimeout(resolve, LULL_MS));
+          isLull = true;
+        }
+      }
       this.#isPumping = false;
     });
   }
@@ -136,9 +152,8 @@ export class Collector {
       this.#tell({ event: 'not-kept', dropped: batch.length, message: (error as Error).message });
     }
     for (const outcome of outcomes) this.#tell({ event: 'segment', ...outcome });
-    const receipts = this.#receipt(outcomes.flatMap((outcome) => (outcome.kind === 'refused' ? [] : [outcome.name])));
-    await this.#decode(outcomes);
-    await receipts;
+    for (const outcome of outcomes) if (outcome.kind === 'stored') this.#undecoded.push(outcome.name);
+    await this.#receipt(outcomes.flatMap((outcome) => (outcome.kind === 'refused' ? [] : [outcome.name])));
     if (this.#dropped > 0) {
       this.#tell({
         event: 'not-kept',
@@ -199,14 +214,11 @@ export class Collector {
     });
   }
 
-  async #decode(outcomes: readonly Outcome[]): Promise<void> {
-    for (const outcome of outcomes) {
-      if (outcome.kind !== 'stored') continue;
-      try {
-        this.#tellChain(await this.#chain.follow(outcome.name));
-      } catch (error) {
-        this.#failed(error as Error);
-      }
+  async #decode(name: SegmentName): Promise<void> {
+    try {
+      this.#tellChain(await this.#chain.follow(name));
+    } catch (error) {
+      this.#failed(error as Error);
     }
   }
 
