@@ -41,7 +41,6 @@ export interface HangRecord {
 export function watchLoop(): void {
   const { workerData } = process.getBuiltinModule('node:worker_threads');
   const { readFileSync, writeFileSync, renameSync } = process.getBuiltinModule('node:fs');
-  const { Session } = process.getBuiltinModule('node:inspector');
   const { beats, file, pid, everyMs, looks, answerMs } = workerData as WatchOrders;
   const count = new Int32Array(beats);
   let [seen, silent] = [-1, 0];
@@ -70,7 +69,8 @@ export function watchLoop(): void {
     process.kill(pid, 'SIGKILL');
   };
   const examine = (): void => {
-    const session = new Session();
+    // Not before it is needed: memory is dear here.
+    const session = new (process.getBuiltinModule('node:inspector').Session)();
     session.connectToMainThread();
     const scripts = new Map<string, string>();
     session.on('Debugger.scriptParsed', ({ params }) => void scripts.set(params.scriptId, params.url));

@@ -39,7 +39,7 @@ async function joinInto(folder) {
   const bundle = await rolldown({
     input: at('../dist/cli.js'),
     platform: 'node',
-    plugins: [requiredYaml, withoutFirstLine],
+    plugins: [requiredYaml, withoutFirstLine, unreachable],
     onLog: (_level, { message }) => {
       throw new Error(`Joining the gateway: ${message}`);
     },
@@ -53,6 +53,7 @@ async function joinInto(folder) {
     comments: { legal: false, annotation: false, jsdoc: false },
   });
   await bundle.close();
+  writeFileSync(file, inAscii(readFileSync(file, 'utf8')));
   if (output.length !== 1) throw new Error(`Joining the gateway: expected one file, got ${output.length}`);
   chmodSync(file, 0o755);
   return output[0].moduleIds;
@@ -63,6 +64,18 @@ const withoutFirstLine = {
   name: 'without-first-line',
   transform: { filter: { id: /runtime\/dist\/cli\.js$/ }, handler: (code) => code.replace(/^#!.*\n/, '') },
 };
+
+/** The MQTT client's ways to brokers that a gateway has no addresses for: web sockets and SOCKS (mqtt/stream.ts opens its own). */
+const unreachable = {
+  name: 'unreachable',
+  resolveId: { filter: { id: /^(ws|socks)$/ }, handler: (id) => `\0unreachable:${id}` },
+  load: { filter: { id: /^\0unreachable:/ }, handler: () => 'module.exports = {};' },
+};
+
+/** V8 keeps a source with one letter beyond Latin-1 in two bytes a letter: megabytes, for a few dashes and quotes. */
+function inAscii(code) {
+  return code.replace(/[^\0-\x7f]/g, (letter) => `\\u${letter.charCodeAt(0).toString(16).padStart(4, '0')}`);
+}
 
 /** A package that depends on nothing. */
 function manifest() {

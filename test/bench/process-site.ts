@@ -81,6 +81,8 @@ function draftBundle(tickMs: number, schema: Uint8Array, count: number): Bundle 
     return (x | 0) / 2147483648;
   };
   const F = DECAYS.length + 2 * RESONATORS.length;
+  // A bundle of many signals must be as small as any other.
+  const [order, basis] = count > SIGNALS ? [12, 8] : [ORDER, BASIS];
   const drawn = (rows: number, cols: number, type: Tensor['type'], draw: () => number): Tensor =>
     quantiseTensor(Float64Array.from({ length: rows * cols }, draw), rows, cols, type);
   const ones = new Uint8Array(new Float32Array(count).fill(1).buffer);
@@ -112,9 +114,9 @@ function draftBundle(tickMs: number, schema: Uint8Array, count: number): Bundle 
       resonators: RESONATORS,
       lags: [],
       featureExponents: { type: 'i8', rows: count, cols: F, scales: ones, data: new Uint8Array(count * F) },
-      bottleneck: drawn(ORDER, count * F, 'i8', () => 0.02 * uniform()),
-      readout: drawn(count * BASIS, ORDER, 'i8', () => 0.05 * uniform()),
-      horizonBasis: drawn(HORIZON, BASIS, 'i16', () => 0.3 * uniform()),
+      bottleneck: drawn(order, count * F, 'i8', () => 0.02 * uniform()),
+      readout: drawn(count * basis, order, 'i8', () => 0.05 * uniform()),
+      horizonBasis: drawn(HORIZON, basis, 'i16', () => 0.3 * uniform()),
     },
     seasonal: { periodTicks: 1440, table: drawn(count, 24, 'i8', () => 0.3 * uniform()) },
     bounds: { coverage: 0.9, radius: drawn(count, HORIZON, 'i16', () => 0.3), rate: 0.02 },
