@@ -5,6 +5,8 @@
  */
 import { type ReadingTarget, type Site, wrapOf } from '@stillwell/protocol';
 import type { BundleKeeper } from './bundle/change.ts';
+import { Takeover } from './divergence/takeover.ts';
+import { rebuilt } from './divergence/warmed.ts';
 import { Counters, type RefusedCause } from './health.ts';
 import { Aligner, type LateChange } from './ingest/align.ts';
 import { BirthFile } from './ingest/births.ts';
@@ -31,8 +33,6 @@ export interface EngineOptions extends RecordOptions {
 
 /** Ticks kept to warm a new bundle with. */
 const RECENT_TICKS = 8192;
-/** Of these as many are forecast from as bounds need to settle: paths cost most of a tick, and meanwhile nothing else runs. */
-const RECENT_FORECASTS = 1024;
 /** An outage of more ticks than this is not bridged: the filter starts afresh behind it. */
 const MAX_GAP_TICKS = 50_000;
 
@@ -42,6 +42,7 @@ export class Engine {
   readonly decoder: ReadingDecoder;
   readonly plans: PlanKeeper;
   readonly watch: SignalWatch;
+  readonly takeover: Takeover;
   readonly aligner: Aligner;
   readonly held = new HeldReadings();
   readonly spool: Spool;
@@ -61,6 +62,8 @@ export class Engine {
   };
   readonly #onChange = (change: LateChange): void => this.#correct(change, true);
   #serving: Serving | null = null;
+  /** Speaks in the place of a filter while none is fit to; the record is then the plain one. */
+  #held: Serving | null = null;
   /** What the record is coded against while no bundle serves. */
   #plain: PlainRecord;
   #journal: Journal;
@@ -78,6 +81,8 @@ export class Engine {
     const wraps = channels.map(wrapOf);
     this.aligner = new Aligner({ tickMs: site.tickMs, latenessMs: site.latenessMs, aggregates, wraps });
     this.#recent = new RecentTicks(channels.length, RECENT_TICKS);
+    const { note } = options;
+    this.takeover = new Takeover({ keeper, disk, folder, recent: this.#recent, plans: this.plans, note });
     const start = openRecord(options, keeper);
     this.identity = start.identity;
     this.spool = new Spool(disk, `${folder}/spool`, options.spoolBytes, this.streamName);
@@ -100,7 +105,7 @@ export class Engine {
   }
 
   get serving(): Serving | null {
-    return this.#serving;
+    return this.#serving ?? this.#held;
   }
 
   get journal(): Journal {
@@ -180,18 +185,16 @@ export class Engine {
     journal.flush();
   }
 
-  /** Puts a bundle to work: warmed on the recent ticks, changed at the present tick boundary. */
-  install(checked: CheckedBundle): void {
-    const after = this.#warmed(checked);
-    after.plans = this.plans;
-    after.replan();
-    this.#journal.turnOver(this.#recorded, after);
-    this.#serving = after;
+  /** Puts a bundle to work: warmed on the recent ticks, changed at the present tick boundary; false where it fails on them. */
+  install(checked: CheckedBundle): boolean {
+    const after = this.takeover.installed(checked, this.aligner.nextTick);
+    if (after !== null) this.#put(this.#recorded, after);
+    return after !== null;
   }
 
   /** The same document under a higher sequence. */
   restamp(checked: CheckedBundle): void {
-    if (this.#serving !== null) this.#serving.checked = checked;
+    if (this.serving !== null) this.serving.checked = checked;
   }
 
   /** Leaves everything on disk. */
@@ -208,16 +211,18 @@ export class Engine {
       this.#resume(from.recovered, from.recorded);
       if (this.#serving !== null) keeper.serves(this.#serving.checked);
     }
-    if (this.#serving === null) {
-      const first = keeper.best();
-      if (first === null) return;
-      this.install(first);
-      keeper.serves(first);
+    const first = (checked: CheckedBundle): void => {
+      if (this.install(checked)) keeper.serves(checked);
+    };
+    const { fit, ladder } = this.takeover;
+    for (const checked of fit) if (this.#recorded === this.#plain && this.#held === null) first(checked);
+    const best = keeper.best();
+    if (this.serving === null && best !== null) {
+      ladder.begin(this.aligner.nextTick ?? 0, 'every bundle in the data folder failed on what was read here');
+      this.#held = Serving.holding(best);
     }
-    const newer = keeper.interrupted(this.#serving!.checked);
-    if (newer === null) return;
-    this.install(newer);
-    keeper.serves(newer);
+    const newer = this.#serving === null ? null : keeper.interrupted(this.#serving.checked);
+    if (newer !== null && !this.takeover.isCondemned(newer)) first(newer);
   }
 
   #begin(left: RecordStart['left'], nextTick: number | null): void {
@@ -291,16 +296,17 @@ export class Engine {
     );
   }
 
-  #warmed(checked: CheckedBundle): Serving {
-    const serving = new Serving(checked);
-    const { horizon, warmupTicks } = checked.model;
-    let quiet = this.#recent.count - warmupTicks - Math.max(RECENT_FORECASTS, 8 * horizon);
-    this.#recent.forEach((tick, values) => {
-      if (quiet-- > 0) serving.fold(tick, values);
-      else serving.step(tick, values);
-    });
-    const next = this.aligner.nextTick;
-    return serving.tick < 0 || serving.tick + 1 === next ? serving : new Serving(checked);
+  /** after  null: the plain record goes on, and readings are held */
+  #put(before: Recorded, after: Serving | null): void {
+    if (after === null && this.#serving !== null) this.#held = Serving.holding(this.#serving.checked);
+    if (after !== null) this.#held = null;
+    const plain = after ?? this.#plain.afresh();
+    this.#journal.turnOver(before, plain);
+    this.#serving = after;
+    if (plain instanceof PlainRecord) {
+      this.#plain = plain;
+      plain.beginSegment();
+    }
   }
 
   #reading(channel: number, value: number, timeMs: number): void {
@@ -360,12 +366,41 @@ export class Engine {
     this.#recent.push(tick, values);
     this.plans.came(tick, values);
     this.counters.ticks++;
-    if (toDisk) this.#journal.tick(tick, values);
-    if (this.#serving !== null) {
-      this.#serving.step(tick, values);
-      this.watch.observe(this.#serving);
-    } else this.#plain.step(tick, values, (channel) => this.aligner.readingsOf(tick, channel));
+    const isNew = this.#step(tick, values);
+    if (toDisk || isNew) this.#journal.tick(tick, values);
     this.#journal.coded(this.#recorded);
+    this.#held?.hold(tick, values);
+    this.#watch(tick);
+  }
+
+  /**
+   * By the filter; where it fails, the segment ends before this tick, which goes to what takes over. Whether it does, and so
+   * belongs into another journal file than it may stand in already.
+   */
+  #step(tick: number, values: Float64Array): boolean {
+    const serving = this.#serving;
+    if (serving === null) {
+      this.#plain.step(tick, values, (channel) => this.aligner.readingsOf(tick, channel));
+      return false;
+    }
+    if (this.takeover.stepped(serving, tick, values)) return false;
+    const before = rebuilt(serving, this.#journal, this.#recent, tick) ?? serving;
+    this.#put(before, this.takeover.afterFailure(serving, tick));
+    this.#step(tick, values);
+    return true;
+  }
+
+  /** Looks at what the filter made of a tick, and changes it at the boundary behind where it must be. */
+  #watch(tick: number): void {
+    const [serving, held] = [this.#serving, this.#held];
+    if (serving !== null) {
+      this.watch.observe(serving);
+      const action = this.takeover.ladder.observe(serving);
+      if (action !== null) this.#put(serving, this.takeover.after(serving, action, tick + 1));
+    } else if (held !== null) {
+      const after = this.takeover.retried(held, tick);
+      if (after !== null) this.#put(this.#plain, after);
+    }
   }
 
   #correct(change: LateChange, toDisk: boolean): void {

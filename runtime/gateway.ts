@@ -338,7 +338,7 @@ export class Gateway {
   /** What questions are answered from. */
   #present(): ReturnType<QuestionPorts['present']> {
     const { serving, plans } = this.engine;
-    if (serving === null || serving.tick < 0) return null;
+    if (serving === null || serving.tick < 0 || serving.isHolding) return null;
     return { serving, occasion: this.#publisher.occasionOf(serving, plans, this.#issuedAtMs()) };
   }
 
@@ -360,7 +360,7 @@ export class Gateway {
 
   #setStatus(): void {
     const { serving } = this.engine;
-    this.#status = serving === null ? 'no-bundle' : serving.isWarming ? 'warming' : 'running';
+    this.#status = serving === null ? 'no-bundle' : serving.isWarming && !serving.isHolding ? 'warming' : 'running';
   }
 
   #sayHealth(): void {

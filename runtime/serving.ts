@@ -8,8 +8,11 @@ import {
   createBounds,
   createState,
   type FilterState,
+  FOLDED,
+  fadeTicks,
   forecastPath,
   intervalOf,
+  MISSING,
   type Model,
   predictNext,
   restoreBounds,
@@ -67,6 +70,10 @@ export class Serving implements Recorded {
   plans: PlanSource | null = null;
   /** (nc) readings are folded in on every 2^k-th step of the lattice, as the record keeps them (residuals/budget.ts). */
   readonly #coarseness: Uint8Array;
+  /** (ny) standardised half-widths that bounds have at least, where the filter has gone astray; 0: as they are. */
+  readonly least: Float64Array;
+  /** Whether each signal's last reading is held in the place of forecasts. */
+  isHolding = false;
   readonly #values: Float64Array;
   readonly #plan: Float64Array;
   #isPlanned = false;
@@ -86,6 +93,14 @@ export class Serving implements Recorded {
     this.median = new Float64Array(model.signalCount * model.horizon);
     this.lower = new Float64Array(this.median.length);
     this.upper = new Float64Array(this.median.length);
+    this.least = new Float64Array(model.signalCount);
+  }
+
+  /** One that only ever holds last readings, see `hold`. */
+  static holding(checked: CheckedBundle): Serving {
+    const serving = new Serving(checked);
+    serving.isHolding = true;
+    return serving;
   }
 
   /** The same bundle with a filter that starts anew. */
@@ -117,7 +132,7 @@ export class Serving implements Recorded {
   }
 
   get isWarming(): boolean {
-    return this.bounds.warmed < this.model.warmupTicks;
+    return this.isHolding || this.bounds.warmed < this.model.warmupTicks;
   }
 
   /** Expected size of the one-step residual in lattice steps (nc): what coder and decoder of segments start from. */
@@ -147,6 +162,12 @@ export class Serving implements Recorded {
 
   /** The same without forecasts and bounds: for ticks of the past that come before those which settle the bounds. */
   fold(tick: number, readings: Float64Array): void {
+    this.#lay(readings);
+    update(this.model, this.state, tick, this.#values);
+  }
+
+  /** Readings onto the lattice. */
+  #lay(readings: Float64Array): void {
     const { model, lattice } = this;
     for (let c = 0; c < model.channelCount; c++) {
       const step = model.latticeStep[c]!;
@@ -156,13 +177,12 @@ export class Serving implements Recorded {
       this.#values[c] = latticeValue(lattice[c]!, step, offset);
       this.isOutside[c] = this.#values[c]! < model.clipLow[c]! || this.#values[c]! > model.clipHigh[c]! ? 1 : 0;
     }
-    update(model, this.state, tick, this.#values);
   }
 
   /** Forecasts anew from where the filter stands, under the plans of now; what was issued before is tracked as it was. */
   replan(): void {
     const { model, state, plans } = this;
-    if (state.tick < 0) return;
+    if (state.tick < 0 || this.isHolding) return;
     this.#isPlanned = plans?.fill(model, state.tick, this.#plan) ?? false;
     forecastPath(model, state, this.median, this.#isPlanned ? this.#plan : null);
   }
@@ -188,6 +208,54 @@ export class Serving implements Recorded {
   /** Brings lower and upper to the present path. */
   computeBounds(): void {
     intervalOf(this.model, this.bounds, this.state, this.median, this.lower, this.upper);
+    const { model, median, lower, upper, least } = this;
+    for (let i = 0; i < least.length; i++) {
+      const width = least[i]! * model.scale[i]!;
+      if (width === 0) continue;
+      for (let at = i * model.horizon; at < (i + 1) * model.horizon; at++) {
+        lower[at] = Math.max(model.clipLow[i]!, Math.min(lower[at]!, median[at]! - width));
+        upper[at] = Math.min(model.clipHigh[i]!, Math.max(upper[at]!, median[at]! + width));
+      }
+    }
+  }
+
+  get coarseness(): Uint8Array {
+    return this.#coarseness;
+  }
+
+  /** Whether every number that is published of it is finite; a filter whose numbers are not has failed. */
+  get isSound(): boolean {
+    const { median, state } = this;
+    let none = 0;
+    for (let at = 0; at < median.length; at++) none += median[at]! - median[at]!;
+    for (let at = 0; at < state.x.length; at++) none += state.x[at]! - state.x[at]!;
+    for (let at = 0; at < state.value.length; at++) none += state.value[at]! - state.value[at]!;
+    return none === 0;
+  }
+
+  /**
+   * In the place of `step`, without any filter: each signal's last reading is its forecast, its mean before the first, and
+   * bounds reach a usual spread or the widest half-width to either side. Never part of a record.
+   */
+  hold(tick: number, readings: Float64Array): void {
+    const { model, state, bounds, median } = this;
+    this.#lay(readings);
+    state.tick = tick;
+    for (let c = 0; c < model.channelCount; c++) {
+      const z = (this.#values[c]! - model.mean[c]!) / model.scale[c]!;
+      const isRead = Number.isFinite(z);
+      state.observed[c] = isRead ? FOLDED : MISSING;
+      state.age[c] = isRead ? 0 : Math.min(2 * fadeTicks(model), state.age[c]! + 1);
+      if (!isRead) continue;
+      state.value[c] = Math.min(state.high[c]!, Math.max(state.low[c]!, z));
+      state.started[c] = 1;
+    }
+    for (let i = 0; i < model.signalCount; i++) {
+      const [from, to] = [i * model.horizon, (i + 1) * model.horizon];
+      median.fill(model.mean[i]! + model.scale[i]! * state.value[i]!, from, to);
+      this.least[i] = bounds.spread[i]!;
+      for (let at = from; at < to; at++) this.least[i] = Math.max(this.least[i]!, bounds.calibrated[at]!);
+    }
   }
 
   /** Empty before the first tick: the desk then starts as we did. */

@@ -63,6 +63,11 @@ export class BundleKeeper {
     return this.#inOrder()[0] ?? null;
   }
 
+  /** All usable bundles, the pointer's first. */
+  get usable(): readonly CheckedBundle[] {
+    return this.#inOrder();
+  }
+
   /** An accepted bundle newer than the serving one, whose change a power cut interrupted. */
   interrupted(serving: CheckedBundle): CheckedBundle | null {
     const newest = this.#slots.highWater[this.#slots.highWater.length - 1];

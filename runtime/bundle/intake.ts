@@ -49,7 +49,7 @@ export class BundleIntake {
     if (offered.outcome === 'refused') return this.#refuse(from, was, offered.code, offered.reason);
     const { checked, isSameDocument } = offered;
     if (isSameDocument) engine.restamp(checked);
-    else engine.install(checked);
+    else if (!engine.install(checked)) return this.#refuse(from, was, 'model', 'it fails on what was read here');
     this.#guard('pointer', () => keeper.serves(checked));
     const to = toHex(checked.digest);
     const outcome = isSameDocument ? 'renewed' : 'changed';

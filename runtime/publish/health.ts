@@ -99,6 +99,7 @@ export function healthPayload(report: HealthReport): Uint8Array {
       passed_over: engine.watch.passedOver.reduce((sum, count) => sum + count, 0),
       hanging: engine.watch.hanging,
       drifting: engine.watch.drifting,
+      astray: { ...engine.takeover.ladder.counts },
       ticks: counters.ticks,
       ticks_skipped: counters.skippedTicks,
       segments_open: journal.ticks > 0 ? 1 : 0,
@@ -121,6 +122,7 @@ export function healthPayload(report: HealthReport): Uint8Array {
     },
     lastChange: report.lastChange,
     ...signalsOf(report),
+    ...divergenceOf(engine),
     versions: VERSIONS,
   });
 }
@@ -132,6 +134,14 @@ function signalsOf({ engine, nowMs, wallTickMs }: HealthReport): Pick<HealthFact
   return {
     signals: signalsHealth(serving, watch, aligner.lastReadingMs, wallTickMs === null ? aligner.newestMs : nowMs),
   };
+}
+
+/** Nothing while the filter is well. */
+function divergenceOf({ takeover, site }: Engine): Pick<HealthFacts, 'divergence'> {
+  const { present } = takeover.ladder;
+  if (present === null) return {};
+  const { step, sinceTick, reason } = present;
+  return { divergence: { step, sinceMs: (sinceTick + 1) * site.tickMs, reason } };
 }
 
 /** Nothing of plans at sites without them. */

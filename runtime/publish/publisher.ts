@@ -89,7 +89,10 @@ export class Publisher {
   tick(serving: Serving, plans: PlanKeeper, lastReadingMs: Float64Array, issuedAtMs: number): void {
     const { site, clock } = this.#config;
     const occasion = this.occasionOf(serving, plans, issuedAtMs);
-    const outlooks = site.signals.map(({ limits }, i) => outlooksOf(serving, serving.median, i, limits));
+    // A reading that is held says nothing of what it will come to.
+    const outlooks = site.signals.map(({ limits }, i) =>
+      serving.isHolding ? [] : outlooksOf(serving, serving.median, i, limits),
+    );
     // Also while nobody can be told: what was said before must not look different after.
     this.#warnings.tick(serving, occasion, outlooks);
     if (!this.#isReady) return;

@@ -1,7 +1,8 @@
 /**
  * How far a forecast may be trusted, as a status letter in the sense of NAMUR NE 107: C while the filter warms up or
  * catches up, S where a reading lies outside what the bundle was trained on or a plan in use proved wrong, M where readings
- * are missing, repeat themselves or part from what other channels say. F, no usable model, is said in health: without a model nothing is forecast.
+ * are missing, repeat themselves or part from what other channels say. F: the last reading is held since no model is fit; that there
+ * is none at all only health says, for then nothing is forecast.
  */
 import type { Quality } from '@stillwell/protocol';
 import { disagreesWith, standsStill } from '@stillwell/runtime/filter';
@@ -24,6 +25,7 @@ export function judge(
   signal: number | null,
   planFault: string | null,
 ): Judged {
+  if (serving.isHolding) return bad('F', 'no model is fit to forecast: the last reading is held');
   if (serving.isWarming) {
     const { warmed } = serving.bounds;
     return bad('C', `warming up: ${warmed} of ${serving.model.warmupTicks} ticks`);
@@ -34,6 +36,8 @@ export function judge(
   const to = signal === null ? serving.model.signalCount : signal + 1;
   for (let i = from; i < to; i++)
     if (serving.isOutside[i] === 1) return bad('S', `${channels[i]!.name}: reading outside the trained range`);
+  for (let i = from; i < to; i++)
+    if (serving.least[i]! > 0) return bad('S', `${channels[i]!.name}: forecasts are far off; bounds are widened`);
   if (planFault !== null) return bad('S', planFault);
   for (let i = from; i < to; i++) {
     if (standsStill(serving.model, serving.state, i))

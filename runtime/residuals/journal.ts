@@ -124,6 +124,11 @@ export class Journal {
     return this.#number;
   }
 
+  /** The filter's state where the open segment starts. */
+  get startState(): Uint8Array {
+    return this.#startState;
+  }
+
   get ticks(): number {
     return this.#writer?.ticks ?? 0;
   }

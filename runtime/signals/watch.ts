@@ -34,12 +34,12 @@ const BLOCKS = 2;
 /** Share of the innovations' summed size that lies on one side, from which they are no noise but an error that lasts. */
 const ONE_SIDED = 0.6;
 /** The limit of sums is so many times that of independent numbers: neighbours are alike. */
-const SUM_FACTOR = 3;
+const SUM_FACTOR = 6;
 /** Sums grow to so many limits at most, so that forecasts that are right again are seen. */
 const MOST_LIMITS = 2;
 /** Jumps within the last hundred or so readings from which a signal counts as jumping, and below which it no longer does. */
-const MANY_JUMPS = 4;
-const FEW_JUMPS = 2;
+const MANY_JUMPS = 5;
+const FEW_JUMPS = 2.5;
 const JUMPS_FADE = 1 - 1 / 128;
 
 /** Mean square of a block, in variances, above which it is beyond its bound. */
