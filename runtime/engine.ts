@@ -51,7 +51,8 @@ export class Engine {
   readonly #options: EngineOptions;
   /** Null at sites without Sparkplug. */
   readonly #births: BirthFile | null;
-  #recent: RecentTicks;
+  /** Readings of the latest ticks. */
+  recent: RecentTicks;
   readonly #ranges: readonly (readonly [number, number] | null)[];
   /** Of the message being read: what stands for the time of readings without one, and the latest that is believed. */
   #arrivalMs = 0;
@@ -80,9 +81,9 @@ export class Engine {
     const aggregates = channels.map((channel) => channel.aggregate);
     const wraps = channels.map(wrapOf);
     this.aligner = new Aligner({ tickMs: site.tickMs, latenessMs: site.latenessMs, aggregates, wraps });
-    this.#recent = new RecentTicks(channels.length, RECENT_TICKS);
+    this.recent = new RecentTicks(channels.length, RECENT_TICKS);
     const { note } = options;
-    this.takeover = new Takeover({ keeper, disk, folder, recent: this.#recent, plans: this.plans, note });
+    this.takeover = new Takeover({ keeper, disk, folder, recent: this.recent, plans: this.plans, note });
     const start = openRecord(options, keeper);
     this.identity = start.identity;
     this.spool = new Spool(disk, `${folder}/spool`, options.spoolBytes, this.streamName);
@@ -169,7 +170,7 @@ export class Engine {
     const counts = this.#journal.leave(this.#recorded);
     this.identity = replaceIdentity(disk, folder, this.identity);
     this.aligner.renewAt(tick);
-    this.#recent = new RecentTicks(this.#ranges.length, RECENT_TICKS);
+    this.recent = new RecentTicks(this.#ranges.length, RECENT_TICKS);
     this.#plain = PlainRecord.of(this.site);
     if (this.#serving !== null) this.#serving = this.#serving.afresh();
     this.#journal = this.#openJournal({ number: 0, sinceKeyed: 0 }, counts);
@@ -235,7 +236,7 @@ export class Engine {
     const { checkpoint, records, validBytes, tornBytes, kept, earlier } = recovered;
     if (tornBytes > 0) this.#options.note('warn', `journal: ${tornBytes} torn bytes cut off`);
     for (const record of earlier) {
-      if (record.kind === 'tick') this.#recent.push(record.tick, record.values);
+      if (record.kind === 'tick') this.recent.push(record.tick, record.values);
       this.#align(record);
     }
     if (recorded.tick >= 0 && this.aligner.nextTick !== recorded.tick + 1) this.aligner.startAt(recorded.tick + 1);
@@ -363,7 +364,7 @@ export class Engine {
 
   /** toDisk  false for what the open journal file holds already */
   #fold(tick: number, values: Float64Array, toDisk: boolean): void {
-    this.#recent.push(tick, values);
+    this.recent.push(tick, values);
     this.plans.came(tick, values);
     this.counters.ticks++;
     const isNew = this.#step(tick, values);
@@ -384,7 +385,7 @@ export class Engine {
       return false;
     }
     if (this.takeover.stepped(serving, tick, values)) return false;
-    const before = rebuilt(serving, this.#journal, this.#recent, tick) ?? serving;
+    const before = rebuilt(serving, this.#journal, this.recent, tick) ?? serving;
     this.#put(before, this.takeover.afterFailure(serving, tick));
     this.#step(tick, values);
     return true;

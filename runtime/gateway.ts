@@ -3,13 +3,13 @@
  * forecasts go out, then the disk is tended. Nothing that comes from outside can throw out of here.
  */
 import { type HealthStatus, topicsOf } from '@stillwell/protocol';
+import { logBrokerLine, openBrokerLine, TakeOvers } from './broker-line.ts';
 import { BundleKeeper } from './bundle/change.ts';
 import { BundleIntake } from './bundle/intake.ts';
 import { ClockWatch } from './clock-watch.ts';
 import type { GatewayConfig } from './config.ts';
 import { Engine } from './engine.ts';
-import { TAKE_OVERS_TO_A_FIGHT } from './mqtt/back-off.ts';
-import { type Connection, type ConnectionEvent, type IncomingPacket, openConnection } from './mqtt/connection.ts';
+import type { Connection, ConnectionEvent, IncomingPacket } from './mqtt/connection.ts';
 import { dispatch, filtersOf } from './mqtt/subscriptions.ts';
 import type { GatewayPorts } from './ports.ts';
 import { Publisher } from './publish/publisher.ts';
@@ -18,6 +18,7 @@ import { GroupSync } from './residuals/group-sync.ts';
 import { takeReceipt } from './residuals/receipts.ts';
 import { Shipper } from './residuals/ship.ts';
 import { CLOCK_UNSET_MS, SteadyClock } from './steady-clock.ts';
+import type { Watcher } from './watcher.ts';
 
 /** The loop comes round at least so often, for whatever is due. */
 const PULSE_MS = 500;
@@ -30,14 +31,15 @@ const RETRY_DISK_MS = 30_000;
 const SETTLE_MS = 1000;
 const SETTLE_AT_MOST_MS = 10_000;
 const CATCHING_UP_TICKS = 3;
-const SESSION_EXPIRY_SECONDS = 3600;
 /** For a message that must come again. */
 const NEVER = new Promise<void>(() => {});
 
 /** A running gateway; see the file head. */
 export class Gateway {
   readonly engine: Engine;
-  readonly #config: GatewayConfig;
+  /** Told of ticks, pulses and the line. */
+  watcher: Watcher | null = null;
+  readonly config: GatewayConfig;
   readonly #ports: GatewayPorts;
   readonly #clockWatch: ClockWatch;
   readonly #intake: BundleIntake;
@@ -45,7 +47,7 @@ export class Gateway {
   readonly #shipper: Shipper;
   readonly #groupSync: GroupSync;
   readonly #connection: Connection;
-  readonly #publisher: Publisher;
+  readonly publisher: Publisher;
   readonly #questions: Questions;
   #status: HealthStatus = 'starting';
   #cancelPulse: () => void = () => {};
@@ -54,16 +56,16 @@ export class Gateway {
   #lookedAt = 0;
   #retriedAt = 0;
   #saidFault: string | null = null;
-  #takeOvers = 0;
-  #fight: string | null = null;
+  readonly #takeOvers = new TakeOvers();
   #isStopping = false;
+  #pulseDueMs = Number.NaN;
 
   /** Opens the data folder and starts. throws  RuntimeError 'data-folder' */
   constructor(config: GatewayConfig, ports: GatewayPorts) {
     const { site, gateway, data, segmentTicks, spoolBytes } = config;
     const { disk, log } = ports;
     const clock = new SteadyClock(ports.clock);
-    this.#config = config;
+    this.config = config;
     this.#ports = { ...ports, clock };
     this.#topics = topicsOf(site.root, site.site);
     const keeper = new BundleKeeper(disk, data, site, config.trusted);
@@ -92,7 +94,7 @@ export class Gateway {
     this.#holdUntil = clock.monotonic() + SETTLE_AT_MOST_MS;
     this.#groupSync = new GroupSync({ clock, sync: async () => this.engine.journal.syncSoon() });
     this.#connection = this.#connect();
-    this.#publisher = new Publisher(config, this.#ports, this.#connection, this.#topics);
+    this.publisher = new Publisher(config, this.#ports, this.#connection, this.#topics);
     this.#questions = this.#openQuestions();
     this.#shipper = new Shipper({
       spool: this.engine.spool,
@@ -113,12 +115,20 @@ export class Gateway {
     return this.#status;
   }
 
-  get config(): GatewayConfig {
-    return this.#config;
-  }
-
   get isConnected(): boolean {
     return this.#connection.isConnected;
+  }
+
+  /** The health message as it would be published now. */
+  healthNow(): Uint8Array {
+    return this.publisher.healthNow(this.#report());
+  }
+
+  /** The forecast messages of the last tick, by signal; none before the first. */
+  forecastsNow(): readonly Uint8Array[] {
+    const present = this.#present();
+    if (present === null) return [];
+    return this.publisher.forecastsNow(present.serving, present.occasion, this.engine.aligner.lastReadingMs);
   }
 
   /** Checks a sealed bundle and, if it holds, puts it to work at this tick boundary; the outcome as one sentence. */
@@ -134,7 +144,7 @@ export class Gateway {
     this.engine.stop();
     this.#groupSync.release();
     this.#status = 'stopped';
-    await this.#publisher.health(this.#report());
+    await this.publisher.health(this.#report());
     await this.#connection.end();
   }
 
@@ -146,25 +156,15 @@ export class Gateway {
   }
 
   #connect(): Connection {
-    const { broker, site, gateway } = this.#config;
-    const { firstRetryMs } = this.#ports;
-    return openConnection({
-      url: broker.url,
-      clientId: `stillwell-${site.site}-${gateway}`,
-      protocol: broker.protocol,
-      username: broker.username,
-      password: broker.password,
-      tls: broker.tls,
-      sessionExpirySeconds: SESSION_EXPIRY_SECONDS,
-      will: Publisher.will(this.#config, this.#ports, this.#topics.health),
-      ...(firstRetryMs === undefined ? {} : { backOff: { firstMs: firstRetryMs } }),
+    const will = Publisher.will(this.config, this.#ports, this.#topics.health);
+    return openBrokerLine(this.config, this.#ports, will, {
       onMessage: (topic, payload, packet) => this.#take(topic, payload, packet),
       onState: (event) => this.#guard(() => this.#onConnection(event)),
     });
   }
 
   #openQuestions(): Questions {
-    const { site, gateway } = this.#config;
+    const { site, gateway } = this.config;
     const { clock, log } = this.#ports;
     return new Questions({
       site,
@@ -173,7 +173,7 @@ export class Gateway {
       log,
       monotonic: () => clock.monotonic(),
       present: () => this.#present(),
-      nowMs: () => this.#nowMs(),
+      nowMs: () => this.nowMs(),
       publish: (message) => this.#connection.publish(message),
     });
   }
@@ -185,26 +185,18 @@ export class Gateway {
   }
 
   #onConnection(event: ConnectionEvent): void {
-    const { log, clock } = this.#ports;
+    logBrokerLine(this.#ports.log, event);
+    this.#takeOvers.take(event);
+    this.watcher?.line(event);
     if (event.kind === 'connected') {
-      log.info(`connected to the broker, MQTT ${event.protocol === 5 ? '5' : '3.1.1'}`);
-      this.#holdUntil = Math.min(this.#holdUntil, clock.monotonic() + SETTLE_MS);
+      this.#holdUntil = Math.min(this.#holdUntil, this.#ports.clock.monotonic() + SETTLE_MS);
       this.#shipper.connected();
-      this.#publisher.connected();
-      this.#fight = null;
+      this.publisher.connected();
       this.#sayHealth();
     } else if (event.kind === 'lost') {
       this.#shipper.lost();
-      this.#publisher.reconnects++;
-      log.warn(`broker: ${event.reason}; next attempt in ${(event.retryMs / 1000).toFixed(1)} s`);
-    } else if (event.kind === 'refused-subscription') {
-      log.warn(`the broker refused to subscribe ${event.filter}: ${event.reason}`);
-    } else {
-      log.warn(`another client took this gateway's place at the broker (${event.count})`);
-      this.#takeOvers++;
-      if (event.count >= TAKE_OVERS_TO_A_FIGHT) this.#fight = "another client uses this gateway's client id";
-      this.#sayHealth();
-    }
+      this.publisher.reconnects++;
+    } else if (event.kind === 'taken-over') this.#sayHealth();
   }
 
   /** The promise, if any, resolves when a message of QoS 1 may be acknowledged. */
@@ -216,7 +208,7 @@ export class Gateway {
         {
           bundle: (sealed) => void this.#intake.offer(sealed, 'from the broker'),
           question: (bytes) => this.#questions.take(bytes, packet),
-          receipt: (bytes) => takeReceipt(bytes, this.#config.gateway, this.#shipper, this.#ports.log),
+          receipt: (bytes) => takeReceipt(bytes, this.config.gateway, this.#shipper, this.#ports.log),
           reading: (from, bytes) => {
             this.#plan(from, bytes);
             this.#reading(from, bytes);
@@ -232,19 +224,19 @@ export class Gateway {
   }
 
   #reading(topic: string, payload: Uint8Array): void {
-    const { site } = this.#config;
+    const { site } = this.config;
     const wall = this.#ports.clock.wall();
     const isSet = wall >= CLOCK_UNSET_MS;
-    const notAfterMs = this.#config.clock === 'wall' ? wall + site.latenessMs + site.tickMs : null;
+    const notAfterMs = this.config.clock === 'wall' ? wall + site.latenessMs + site.tickMs : null;
     this.engine.held.nowMs = this.#ports.clock.monotonic();
     this.engine.message(topic, payload, isSet ? wall : Number.NaN, isSet ? notAfterMs : null);
-    if (this.#config.clock === 'readings' || !isSet) this.#closeTicks();
+    if (this.config.clock === 'readings' || !isSet) this.#closeTicks();
   }
 
   /** A message of a plan topic; any other passes without a trace. */
   #plan(topic: string, payload: Uint8Array): void {
     const { log } = this.#ports;
-    const outcomes = this.engine.plan(topic, payload, this.#nowMs());
+    const outcomes = this.engine.plan(topic, payload, this.nowMs());
     for (const { input, kind, cause, text } of outcomes) {
       if (kind === 'refused') log.warn(`plan of ${input} refused (${cause}): ${text}`);
       else if (kind !== 'known') log.info(`plan of ${input} ${kind === 'taken' ? 'taken' : 'taken back'}`);
@@ -253,9 +245,9 @@ export class Gateway {
   }
 
   /** The wall clock, or the newest reading's time where only that can be believed; null: neither. */
-  #nowMs(): number | null {
+  nowMs(): number | null {
     const wall = this.#ports.clock.wall();
-    if (this.#config.clock === 'wall' && wall >= CLOCK_UNSET_MS) return wall;
+    if (this.config.clock === 'wall' && wall >= CLOCK_UNSET_MS) return wall;
     const { newestMs } = this.engine.aligner;
     return Number.isFinite(newestMs) ? newestMs : null;
   }
@@ -264,8 +256,9 @@ export class Gateway {
   #pulse(): void {
     const { clock } = this.#ports;
     this.#watchClock();
-    this.#closeTicks();
     const now = clock.monotonic();
+    if (!Number.isNaN(this.#pulseDueMs)) this.watcher?.pulse(now - this.#pulseDueMs);
+    this.#closeTicks();
     if (this.engine.journal.isDirty && this.#groupSync.ageMs >= SYNC_MS) this.#groupSync.now();
     if (now - this.#lookedAt >= LOOK_MS) {
       this.#lookedAt = now;
@@ -275,8 +268,10 @@ export class Gateway {
     if (isRetry) this.#retriedAt = now;
     this.#tend(isRetry);
     this.#shipper.poke();
-    if (this.#publisher.isHealthDue()) this.#sayHealth();
-    this.#cancelPulse = clock.after(this.#untilNextMs(), () => this.#guard(() => this.#pulse()));
+    if (this.publisher.isHealthDue()) this.#sayHealth();
+    const waitMs = this.#untilNextMs();
+    this.#pulseDueMs = clock.monotonic() + waitMs;
+    this.#cancelPulse = clock.after(waitMs, () => this.#guard(() => this.#pulse()));
   }
 
   /** Before ticks close: a clock that stepped must neither close what was jumped nor leave us deaf. */
@@ -286,11 +281,11 @@ export class Gateway {
     if (wall < CLOCK_UNSET_MS) return;
     const offset = wall - clock.monotonic();
     this.engine.clockIsSet((atMs) => atMs + offset);
-    if (this.#config.clock === 'wall' && this.#clockWatch.check()) this.#sayHealth();
+    if (this.config.clock === 'wall' && this.#clockWatch.check()) this.#sayHealth();
   }
 
   #untilNextMs(): number {
-    const { site, clock } = this.#config;
+    const { site, clock } = this.config;
     const next = this.engine.aligner.nextTick;
     if (clock === 'readings' || next === null) return PULSE_MS;
     const dueMs = (next + 1) * site.tickMs + site.latenessMs - this.#ports.clock.wall();
@@ -300,12 +295,12 @@ export class Gateway {
   #closeTicks(): void {
     const { clock } = this.#ports;
     const wall = clock.wall();
-    const byWall = this.#config.clock === 'wall' && wall >= CLOCK_UNSET_MS;
+    const byWall = this.config.clock === 'wall' && wall >= CLOCK_UNSET_MS;
     // Messages kept by the broker while we were away come before the ticks they belong to are closed as missing.
     if (byWall && clock.monotonic() < this.#holdUntil) return;
     const closed = this.engine.close(byWall ? wall : null);
     if (closed === 0) return;
-    this.#publisher.isCatchingUp = byWall && closed >= CATCHING_UP_TICKS;
+    this.publisher.isCatchingUp = byWall && closed >= CATCHING_UP_TICKS;
     if (byWall) this.#publishTick();
     else this.#publishSoon();
   }
@@ -322,24 +317,27 @@ export class Gateway {
     if (this.#isStopping) return;
     const { serving, plans, aligner } = this.engine;
     const issuedAtMs = this.#issuedAtMs();
-    if (serving !== null && serving.tick >= 0) this.#publisher.tick(serving, plans, aligner.lastReadingMs, issuedAtMs);
-    else if (aligner.nextTick !== null) this.#publisher.silent(aligner.nextTick - 1, issuedAtMs);
+    let forecasts: readonly Uint8Array[] | null = null;
+    if (serving !== null && serving.tick >= 0)
+      forecasts = this.publisher.tick(serving, plans, aligner.lastReadingMs, issuedAtMs);
+    else if (aligner.nextTick !== null) this.publisher.silent(aligner.nextTick - 1, issuedAtMs);
     this.#tend(false);
     const before = this.#status;
     this.#setStatus();
     if (before !== this.#status) this.#sayHealth();
+    this.watcher?.tick(forecasts);
   }
 
   /** By the wall clock, or where that is not to be believed by the newest reading. */
   #issuedAtMs(): number {
-    return this.#nowMs() ?? this.engine.aligner.newestMs;
+    return this.nowMs() ?? this.engine.aligner.newestMs;
   }
 
   /** What questions are answered from. */
   #present(): ReturnType<QuestionPorts['present']> {
     const { serving, plans } = this.engine;
     if (serving === null || serving.tick < 0 || serving.isHolding) return null;
-    return { serving, occasion: this.#publisher.occasionOf(serving, plans, this.#issuedAtMs()) };
+    return { serving, occasion: this.publisher.occasionOf(serving, plans, this.#issuedAtMs()) };
   }
 
   /** The disk's turn, once forecasts are out. */
@@ -364,7 +362,7 @@ export class Gateway {
   }
 
   #sayHealth(): void {
-    if (!this.#isStopping) this.#publisher.health(this.#report()).catch((error) => this.#fault(error));
+    if (!this.#isStopping) this.publisher.health(this.#report()).catch((error) => this.#fault(error));
   }
 
   /** Where nobody would catch what is thrown: several gateways in one process must not fall with one. */
@@ -388,10 +386,10 @@ export class Gateway {
       lastChange: this.#intake.lastChange,
       engine: this.engine,
       ship: this.#shipper.counts,
-      doubt: this.#fight ?? (this.#config.clock === 'wall' ? this.#clockWatch.doubt : null),
+      doubt: this.#takeOvers.fight ?? (this.config.clock === 'wall' ? this.#clockWatch.doubt : null),
       counts: {
         clock: this.#clockWatch.counts,
-        take_overs: this.#takeOvers,
+        take_overs: this.#takeOvers.count,
         questions: this.#questions.answered,
         questions_refused: this.#questions.refused,
       },

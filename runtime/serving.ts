@@ -32,6 +32,8 @@ export interface CheckedBundle {
   readonly digest: Uint8Array;
   readonly epoch: number;
   readonly sequence: number;
+  /** Of the sealed bundle; absent where it was put together in memory. */
+  readonly bytes?: number;
 }
 
 /** Where a serving bundle finds what is planned for the inputs. */

@@ -62,7 +62,7 @@ export function checkBundle(sealed: Uint8Array, context: LoadContext): Verdict {
     checkModel(model);
     const probe = checkProbe(bundle, model);
     if (probe !== null) return refuse('probe', probe);
-    return { ok: true, checked: { bundle, model, digest, epoch, sequence } };
+    return { ok: true, checked: { bundle, model, digest, epoch, sequence, bytes: sealed.length } };
   } catch (error) {
     return refuse(codeOf(error), error instanceof Error ? error.message : String(error));
   }

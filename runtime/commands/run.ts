@@ -11,6 +11,7 @@ import type { Gateway } from '../gateway.ts';
 import { createLog } from '../log.ts';
 import { keepHeapSmall } from '../memory.ts';
 import { shownBroker } from '../mqtt/connection.ts';
+import { DEFAULT_PORT, parsePageAddress } from '../page/address.ts';
 import { openServiceNotice } from '../service-notice.ts';
 import { type FirstBundle, Several, type SiteJob } from '../several.ts';
 import { tellOfHang, watchThisLoop } from '../watchdog.ts';
@@ -18,6 +19,7 @@ import { brokerOptions, gather, sitesOptions } from './options.ts';
 
 interface RunOptions extends RawSitesOptions {
   readonly bundle: readonly string[];
+  readonly page?: string;
   readonly log: string;
 }
 
@@ -42,6 +44,10 @@ export function runCommand(): Command {
     .option('--segment-ticks <n>', 'ticks in a segment (default: an hour of them, 60 to 3600)')
     .option('--spool-mib <n>', 'most MiB of segments waiting on disk (default 32)')
     .option('--health-seconds <n>', 'seconds between health messages (default 60)')
+    .option(
+      '--page <where>',
+      `port or host:port of the gateway's own page, or off (default: 127.0.0.1:${DEFAULT_PORT})`,
+    )
     .option('--log <level>', 'debug, info, warn, error or silent', 'info')
     .addHelpText(
       'after',
@@ -56,7 +62,11 @@ export function runCommand(): Command {
 
 async function run(options: RunOptions): Promise<void> {
   const log = createLog(options.log);
+  const address = parsePageAddress(options.page);
   const jobs = jobsOf(options);
+  // What it takes to serve pages is loaded where they are wanted, and before any gateway starts, so that they miss nothing.
+  const pages =
+    address === null ? null : new (await import('../page/pages.ts')).Pages(address, { clock: systemClock, log });
   for (const { config } of jobs) {
     const warning = openDataFolder(nodeDisk, config.data);
     if (warning !== null) log.error(warning);
@@ -64,12 +74,16 @@ async function run(options: RunOptions): Promise<void> {
   tellOfHang(nodeDisk, options.data, log);
   const notice = openServiceNotice(process.env, log);
   let unwatch = async (): Promise<void> => {};
-  const several = new Several(jobs, {
-    ports: { clock: systemClock, disk: nodeDisk, log },
-    onGateway: (gateway) => log.info(startedText(gateway)),
-    offer: offerFirst,
-  });
+  let several: Several | null = null;
   try {
+    several = new Several(jobs, {
+      ports: { clock: systemClock, disk: nodeDisk, log },
+      onGateway: (gateway) => {
+        log.info(startedText(gateway));
+        pages?.take(gateway);
+      },
+      offer: offerFirst,
+    });
     for (const { engine } of several.gateways) {
       const name = jobs.length === 1 ? '' : `${engine.site.site}: `;
       if (engine.serving === null)
@@ -80,10 +94,10 @@ async function run(options: RunOptions): Promise<void> {
     await untilToldToStop();
     log.info('stopping');
     notice.stopping();
-    await several.stop();
+    await Promise.all([several.stop(), pages?.close()]);
     log.info('stopped');
   } catch (error) {
-    await several.abandon();
+    await Promise.all([several?.abandon(), pages?.close()]);
     throw error;
   } finally {
     await unwatch();

@@ -19,6 +19,16 @@ export class RecentTicks {
     return this.#count;
   }
 
+  /** Oldest tick kept; none where `count` is 0. */
+  get firstTick(): number {
+    return this.#firstTick;
+  }
+
+  /** A channel's value in a tick that is kept; NaN missing. */
+  at(tick: number, channel: number): number {
+    return this.#values[(tick % this.#capacity) * this.#channelCount + channel]!;
+  }
+
   /** Takes one tick in; after a tick left out it starts afresh. `values` (nc) in units, NaN missing. */
   push(tick: number, values: Float64Array): void {
     if (this.#count > 0 && tick !== this.#firstTick + this.#count) this.#count = 0;

@@ -15,9 +15,9 @@ import { forecastPayload, forecastsPayload } from './forecasts.ts';
 import { type HealthReport, healthPayload, willPayload } from './health.ts';
 import { inputOutlooks } from './inputs.ts';
 import { type Occasion, validUntil } from './moment.ts';
-import { outlooksOf } from './outlooks.ts';
+import { type Outlook, outlooksOf } from './outlooks.ts';
 import { statePayload } from './state.ts';
-import { Warnings } from './warnings.ts';
+import { type OpenNow, Warnings } from './warnings.ts';
 
 const JSON_TYPE = 'application/json';
 const MSGPACK_TYPE = 'application/vnd.msgpack';
@@ -28,9 +28,21 @@ const LEAST_BETWEEN_MS = 1000;
 const LAST_WORD_MS = 800;
 const DEFAULT_WILL_DELAY_SECONDS = 10;
 
+/** What health is said of, beside what the publisher knows itself. */
+export interface HealthNow {
+  readonly status: HealthStatus;
+  readonly lastChange: BundleChange | null;
+  readonly engine: Engine;
+  readonly ship: ShipCounts;
+  readonly doubt: string | null;
+  readonly counts: NonNullable<HealthReport['counts']>;
+}
+
 /** See the file head. */
 export class Publisher {
   reconnects = 0;
+  /** Forecasts of single signals handed to the broker. */
+  forecastsIssued = 0;
   isCatchingUp = false;
   readonly #config: GatewayConfig;
   readonly #ports: GatewayPorts;
@@ -85,31 +97,42 @@ export class Publisher {
     return { site, gateway, issuedAtMs, isCatchingUp: this.isCatchingUp, plans, inputs };
   }
 
-  /** State and forecasts of the tick that `serving` has folded in last. */
-  tick(serving: Serving, plans: PlanKeeper, lastReadingMs: Float64Array, issuedAtMs: number): void {
+  /** State and forecasts of the tick that `serving` has folded in last; the forecasts' payloads, or null: none were sent. */
+  tick(
+    serving: Serving,
+    plans: PlanKeeper,
+    lastReadingMs: Float64Array,
+    issuedAtMs: number,
+  ): readonly Uint8Array[] | null {
     const { site, clock } = this.#config;
     const occasion = this.occasionOf(serving, plans, issuedAtMs);
-    // A reading that is held says nothing of what it will come to.
-    const outlooks = site.signals.map(({ limits }, i) =>
-      serving.isHolding ? [] : outlooksOf(serving, serving.median, i, limits),
-    );
+    const outlooks = this.#outlooks(serving);
     // Also while nobody can be told: what was said before must not look different after.
     this.#warnings.tick(serving, occasion, outlooks);
-    if (!this.#isReady) return;
-    serving.computeBounds();
+    if (!this.#isReady) return null;
+    const forecasts = this.#forecasts(serving, lastReadingMs, occasion, outlooks);
     // In event time the broker's clock knows nothing of the message's.
     const leftMs = clock === 'wall' ? validUntil(serving.tick, site) - issuedAtMs : Number.NaN;
     const send = (topic: string, payload: Uint8Array, contentType: string): void => {
       const expiry = leftMs > 0 ? { expirySeconds: leftMs / 1000 } : {};
       this.#send({ topic, payload, qos: 0, retain: true, contentType, ...expiry });
     };
-    for (let i = 0; i < serving.model.signalCount; i++) {
-      const { name } = serving.checked.bundle.channels[i]!;
-      const payload = forecastPayload(serving, occasion, i, outlooks[i]!, lastReadingMs[i]!);
-      send(this.#topics.forecast(name), payload, JSON_TYPE);
-    }
+    for (const [i, payload] of forecasts.entries())
+      send(this.#topics.forecast(serving.checked.bundle.channels[i]!.name), payload, JSON_TYPE);
+    this.forecastsIssued += forecasts.length;
     send(this.#topics.forecastAll, forecastsPayload(serving, occasion), MSGPACK_TYPE);
     send(this.#topics.state, statePayload(serving, occasion), JSON_TYPE);
+    return forecasts;
+  }
+
+  /** The forecast messages of the last tick, by signal, for whoever asks on this machine. */
+  forecastsNow(serving: Serving, occasion: Occasion, lastReadingMs: Float64Array): readonly Uint8Array[] {
+    return this.#forecasts(serving, lastReadingMs, occasion, this.#outlooks(serving));
+  }
+
+  /** Warnings open now. */
+  get openWarnings(): readonly OpenNow[] {
+    return this.#warnings.openNow();
   }
 
   /** A tick closed without a bundle that could forecast. */
@@ -125,14 +148,7 @@ export class Publisher {
   }
 
   /** Says how the gateway is, to the broker and in the data folder; at most once a second unless it is the last word. */
-  async health(report: {
-    readonly status: HealthStatus;
-    readonly lastChange: BundleChange | null;
-    readonly engine: Engine;
-    readonly ship: ShipCounts;
-    readonly doubt: string | null;
-    readonly counts: NonNullable<HealthReport['counts']>;
-  }): Promise<void> {
+  async health(report: HealthNow): Promise<void> {
     const now = this.#ports.clock.monotonic();
     if (now - this.#healthAt < LEAST_BETWEEN_MS && report.status !== 'stopped') {
       this.#isHealthWanted = true;
@@ -140,8 +156,18 @@ export class Publisher {
     }
     this.#healthAt = now;
     this.#isHealthWanted = false;
-    const { site, gateway, clock, healthSeconds, data } = this.#config;
-    const payload = healthPayload({
+    const payload = this.healthNow(report);
+    writeStatus(this.#ports.disk, this.#config.data, payload);
+    const said = this.#send({ topic: this.#topics.health, payload, qos: 1, retain: true, contentType: JSON_TYPE });
+    // The last word must not wait for ever on a broker that hangs.
+    const patience = new Promise<void>((resolve) => this.#ports.clock.after(LAST_WORD_MS, resolve));
+    await (report.status === 'stopped' ? Promise.race([said, patience]) : said);
+  }
+
+  /** The health message as it would be said now. */
+  healthNow(report: HealthNow): Uint8Array {
+    const { site, gateway, clock, healthSeconds } = this.#config;
+    return healthPayload({
       ...report,
       site: site.site,
       gateway,
@@ -151,11 +177,23 @@ export class Publisher {
       reconnects: this.reconnects,
       counts: { warnings_open: this.#warnings.open, warnings_opened: this.#warnings.opened, ...report.counts },
     });
-    writeStatus(this.#ports.disk, data, payload);
-    const said = this.#send({ topic: this.#topics.health, payload, qos: 1, retain: true, contentType: JSON_TYPE });
-    // The last word must not wait for ever on a broker that hangs.
-    const patience = new Promise<void>((resolve) => this.#ports.clock.after(LAST_WORD_MS, resolve));
-    await (report.status === 'stopped' ? Promise.race([said, patience]) : said);
+  }
+
+  #outlooks(serving: Serving): readonly (readonly Outlook[])[] {
+    // A reading that is held says nothing of what it will come to.
+    return this.#config.site.signals.map(({ limits }, i) =>
+      serving.isHolding ? [] : outlooksOf(serving, serving.median, i, limits),
+    );
+  }
+
+  #forecasts(
+    serving: Serving,
+    lastReadingMs: Float64Array,
+    occasion: Occasion,
+    outlooks: readonly (readonly Outlook[])[],
+  ): readonly Uint8Array[] {
+    serving.computeBounds();
+    return outlooks.map((limits, i) => forecastPayload(serving, occasion, i, limits, lastReadingMs[i]!));
   }
 
   /** A message that does not get through is followed by a newer one, or by the will. */

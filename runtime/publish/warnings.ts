@@ -6,7 +6,7 @@
  * When the last warning of a signal ends, its last word goes out not retained and the topic is blanked: whoever listens hears
  * the end, and whoever comes later finds nothing, also where the gateway never comes back.
  */
-import { type MessageHead, type Site, type SiteTopics, warningMessage } from '@stillwell/protocol';
+import { type LimitWarning, type MessageHead, type Site, type SiteTopics, warningMessage } from '@stillwell/protocol';
 import { FOLDED, fadeTicks, standsStill } from '@stillwell/runtime/filter';
 import type { Disk } from '../disk.ts';
 import type { Log } from '../log.ts';
@@ -44,6 +44,11 @@ interface Now {
   readonly horizon: number;
 }
 
+/** A warning that is open, as it would be said now. */
+export interface OpenNow extends LimitWarning {
+  readonly signal: string;
+}
+
 /** See the file head. */
 export class Warnings {
   /** Warnings opened since the start. */
@@ -72,6 +77,15 @@ export class Warnings {
   /** Warnings open now. */
   get open(): number {
     return this.#signals.reduce((sum, one) => sum + one.openCount, 0);
+  }
+
+  /** What is open now, by signal. */
+  openNow(): readonly OpenNow[] {
+    return this.#signals.flatMap((one, i) => {
+      const { name: signal } = this.#ports.site.signals[i]!;
+      const open = one.words().filter(({ status }) => status === 'opened' || status === 'updated');
+      return open.map((word) => ({ ...word, signal }));
+    });
   }
 
   /** After a reconnect: a broker that came back may have forgotten what it retained. */

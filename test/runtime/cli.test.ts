@@ -108,6 +108,7 @@ describe('refused with one line', () => {
     expect(await start('--clock', 'sundial')).toMatch(/--clock: expected wall or readings, got "sundial"/);
     expect(await start('--segment-ticks', '-1')).toMatch(/--segment-ticks: expected a whole number from 1/);
     expect(await start('--gateway', 'a/b')).toMatch(/--gateway "a\/b": expected/);
+    expect(await start('--page', 'nowhere')).toMatch(/--page: expected off, a port, or host:port/);
     expect(existsSync(at('data'))).toBe(false);
   });
 
@@ -153,7 +154,9 @@ test('check says which signals were heard', async () => {
 
 test('run keeps trying a broker that is down, is alone in its folder, takes a bundle by load, and stops in time', async () => {
   const port = await freePort();
-  const args = ['run', ...site(), ...data(), '--broker', `mqtt://127.0.0.1:${port}`, '--gateway', 'g1'];
+  const page = await freePort();
+  const where = ['--broker', `mqtt://127.0.0.1:${port}`, '--page', String(page)];
+  const args = ['run', ...site(), ...data(), ...where, '--gateway', 'g1'];
   const child = spawn(process.execPath, [COMMAND, ...args]);
   let out = '';
   child.stdout.on('data', (chunk) => {
@@ -167,6 +170,9 @@ test('run keeps trying a broker that is down, is alone in its folder, takes a bu
     expect(loaded).toMatchObject({ code: 0, err: '' });
     expect(loaded.out).toMatch(/taken by the running gateway/);
     await until('said in the log', () => out.includes('changed: '), PATIENCE_MS);
+    expect(out).toContain(`page: http://127.0.0.1:${page}/`);
+    const alive = await fetch(`http://127.0.0.1:${page}/healthz`);
+    expect(await alive.json()).toMatchObject({ alive: true });
     const before = Date.now();
     child.kill('SIGTERM');
     expect(await exited).toBe(0);
