@@ -3,24 +3,24 @@
  * bundle's filter, surprises into segments. The same readings give the same ticks, forecasts and segments, whether it ran
  * through or was stopped and started in between.
  */
-import { type ReadingTarget, type Site, wrapOf } from '@stillwell/protocol';
+import type { Site } from '@stillwell/protocol';
 import type { BundleKeeper } from './bundle/change.ts';
 import { Takeover } from './divergence/takeover.ts';
 import { rebuilt } from './divergence/warmed.ts';
 import { Counters, type RefusedCause } from './health.ts';
-import { Aligner, type LateChange } from './ingest/align.ts';
+import { type Aligner, alignerOf, type LateChange, type OpenReadings } from './ingest/align.ts';
 import { BirthFile } from './ingest/births.ts';
-import { ReadingDecoder } from './ingest/decode.ts';
-import { HeldReadings } from './ingest/held.ts';
+import type { ReadingDecoder } from './ingest/decode.ts';
+import type { HeldReadings } from './ingest/held.ts';
+import { ReadingIntake } from './ingest/intake.ts';
 import { PlanKeeper, type PlanOutcome } from './ingest/plans.ts';
-import { refusedBecause } from './ingest/quality.ts';
 import { RecentTicks } from './ingest/recent.ts';
 import { budgetOf, type ResolutionBudget } from './residuals/budget.ts';
 import { Journal, type JournalPosition } from './residuals/journal.ts';
 import { PlainRecord } from './residuals/plain-record.ts';
 import type { Recorded } from './residuals/recorded.ts';
 import { type Identity, type Recovered, replaceIdentity } from './residuals/recover.ts';
-import { openRecord, type RecordOptions, type RecordStart } from './residuals/resume.ts';
+import { alignFrame, openRecord, type RecordOptions, type RecordStart } from './residuals/resume.ts';
 import { Spool } from './residuals/spool.ts';
 import { eachReading, type WalRecord } from './residuals/wal.ts';
 import { type CheckedBundle, Serving } from './serving.ts';
@@ -39,12 +39,10 @@ const MAX_GAP_TICKS = 50_000;
 /** See the file head. */
 export class Engine {
   readonly counters = new Counters();
-  readonly decoder: ReadingDecoder;
   readonly plans: PlanKeeper;
   readonly watch: SignalWatch;
   readonly takeover: Takeover;
   readonly aligner: Aligner;
-  readonly held = new HeldReadings();
   readonly spool: Spool;
   readonly budget: ResolutionBudget;
   identity: Identity;
@@ -53,14 +51,8 @@ export class Engine {
   readonly #births: BirthFile | null;
   /** Readings of the latest ticks. */
   recent: RecentTicks;
-  readonly #ranges: readonly (readonly [number, number] | null)[];
-  /** Of the message being read: what stands for the time of readings without one, and the latest that is believed. */
-  #arrivalMs = 0;
-  #notAfterMs: number | null = null;
-  readonly #target: ReadingTarget = {
-    take: (channel, value, timeMs) => this.#reading(channel, value, Number.isNaN(timeMs) ? this.#arrivalMs : timeMs),
-    refuse: (channel, cause) => this.#refuse(channel, cause),
-  };
+  readonly #channelCount: number;
+  readonly #intake: ReadingIntake;
   readonly #onChange = (change: LateChange): void => this.#correct(change, true);
   #serving: Serving | null = null;
   /** Speaks in the place of a filter while none is fit to; the record is then the plain one. */
@@ -71,18 +63,18 @@ export class Engine {
 
   /** Opens the data folder and goes on where it stopped. throws  RuntimeError 'data-folder' */
   constructor(options: EngineOptions, keeper: BundleKeeper) {
-    const { site, disk, folder } = options;
+    const { site, disk, folder, note } = options;
     const channels = [...site.signals, ...site.inputs];
     this.#options = options;
-    this.decoder = new ReadingDecoder(site);
+    this.#intake = new ReadingIntake(site, {
+      refuse: (channel, cause) => this.#refuse(channel, cause),
+      place: (channel, value, timeMs, notAfterMs) => this.#place(channel, value, timeMs, notAfterMs),
+    });
     this.plans = new PlanKeeper(site);
     this.watch = new SignalWatch(channels.length);
-    this.#ranges = channels.map((channel) => channel.range);
-    const aggregates = channels.map((channel) => channel.aggregate);
-    const wraps = channels.map(wrapOf);
-    this.aligner = new Aligner({ tickMs: site.tickMs, latenessMs: site.latenessMs, aggregates, wraps });
+    this.#channelCount = channels.length;
+    this.aligner = alignerOf(site);
     this.recent = new RecentTicks(channels.length, RECENT_TICKS);
-    const { note } = options;
     this.takeover = new Takeover({ keeper, disk, folder, recent: this.recent, plans: this.plans, note });
     const start = openRecord(options, keeper);
     this.identity = start.identity;
@@ -117,19 +109,25 @@ export class Engine {
     return this.#serving ?? this.#plain;
   }
 
-  /** Takes one MQTT message in; `arrivalMs` stands for the time of readings without one; NaN: they are held. */
+  get decoder(): ReadingDecoder {
+    return this.#intake.decoder;
+  }
+
+  /** Readings that wait for a clock. */
+  get held(): HeldReadings {
+    return this.#intake.held;
+  }
+
+  /** Takes one MQTT message in, as the intake does. */
   message(topic: string, payload: Uint8Array, arrivalMs: number, notAfterMs: number | null): void {
-    this.#arrivalMs = arrivalMs;
-    this.#notAfterMs = notAfterMs;
-    this.decoder.decode(topic, payload, this.#target);
+    this.#intake.message(topic, payload, arrivalMs, notAfterMs);
   }
 
   /** Takes those in that waited. wallMs  of an arrival on the monotonic clock */
   clockIsSet(wallMs: (atMs: number) => number): void {
     if (this.held.count === 0) return;
     this.#options.note('info', `the clock is set: ${this.held.count} readings get their times`);
-    this.#notAfterMs = null;
-    this.held.release((channel, value, atMs) => this.#reading(channel, value, wallMs(atMs)));
+    this.#intake.clockIsSet(wallMs);
   }
 
   /**
@@ -170,7 +168,7 @@ export class Engine {
     const counts = this.#journal.leave(this.#recorded);
     this.identity = replaceIdentity(disk, folder, this.identity);
     this.aligner.renewAt(tick);
-    this.recent = new RecentTicks(this.#ranges.length, RECENT_TICKS);
+    this.recent = new RecentTicks(this.#channelCount, RECENT_TICKS);
     this.#plain = PlainRecord.of(this.site);
     if (this.#serving !== null) this.#serving = this.#serving.afresh();
     this.#journal = this.#openJournal({ number: 0, sinceKeyed: 0 }, counts);
@@ -237,7 +235,7 @@ export class Engine {
     if (tornBytes > 0) this.#options.note('warn', `journal: ${tornBytes} torn bytes cut off`);
     for (const record of earlier) {
       if (record.kind === 'tick') this.recent.push(record.tick, record.values);
-      this.#align(record);
+      alignFrame(this.aligner, record);
     }
     if (recorded.tick >= 0 && this.aligner.nextTick !== recorded.tick + 1) this.aligner.startAt(recorded.tick + 1);
     recorded.coarsen(this.budget.coarseness);
@@ -255,7 +253,7 @@ export class Engine {
   /** Takes one frame in again of the journal file that the checkpoint names. */
   #replay(record: WalRecord, from: number): void {
     if (record.kind === 'tick') this.#beforeTick(record.tick);
-    this.#align(record);
+    alignFrame(this.aligner, record);
     // Where a shorter segment length closed the segment on the way, the rest belongs into the next journal file.
     const isNew = this.#journal.number !== from;
     if (record.kind === 'tick') this.#fold(record.tick, record.values, isNew);
@@ -264,37 +262,13 @@ export class Engine {
       eachReading(record, (channel, timeMs, value) => this.#journal.reading(channel, timeMs, value));
   }
 
-  /** What the aligner knew when a frame of the journal was written. */
-  #align(record: WalRecord): void {
-    if (record.kind === 'start') this.aligner.restore(record.marks);
-    else if (record.kind === 'tick') this.aligner.replayClose(record.tick);
-    else if (record.kind === 'readings')
-      eachReading(record, (channel, timeMs, value) => this.aligner.replay(channel, timeMs, value));
-  }
-
   #openJournal(position: JournalPosition, counts?: Journal['counts']): Journal {
     const { disk, folder, gateway, site, segmentTicks } = this.#options;
     const { spool, budget } = this;
-    const channelCount = this.#ranges.length;
-    const { stream } = this.identity;
-    const keepTicks = RECENT_TICKS;
-    return new Journal(
-      {
-        disk,
-        folder,
-        site: site.site,
-        gateway,
-        stream,
-        spool,
-        budget,
-        segmentTicks,
-        keepTicks,
-        channelCount,
-        openReadings: () => this.aligner.openReadings(),
-      },
-      position,
-      counts,
-    );
+    const [channelCount, { stream }] = [this.#channelCount, this.identity];
+    const where = { disk, folder, site: site.site, gateway, stream, spool, budget, segmentTicks, channelCount };
+    const openReadings = (): OpenReadings => this.aligner.openReadings();
+    return new Journal({ ...where, keepTicks: RECENT_TICKS, openReadings }, position, counts);
   }
 
   /** after  null: the plain record goes on, and readings are held */
@@ -310,17 +284,8 @@ export class Engine {
     }
   }
 
-  #reading(channel: number, value: number, timeMs: number): void {
-    const cause = refusedBecause(value, this.#ranges[channel]!);
-    if (cause !== null) {
-      this.#refuse(channel, cause);
-      return;
-    }
-    if (Number.isNaN(timeMs)) {
-      if (!this.held.hold(channel, value)) this.#refuse(channel, 'clock-unset');
-      return;
-    }
-    const placed = this.aligner.place(channel, timeMs, value, this.#notAfterMs, this.#onChange);
+  #place(channel: number, value: number, timeMs: number, notAfterMs: number | null): void {
+    const placed = this.aligner.place(channel, timeMs, value, notAfterMs, this.#onChange);
     if (placed === 'duplicate') this.counters.duplicates++;
     else if (placed === 'future' || placed === 'too-late' || placed === 'flood') this.#refuse(channel, placed);
     else {

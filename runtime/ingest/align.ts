@@ -4,7 +4,7 @@
  * of arrival changes nothing; later readings become corrections while the tick is still remembered, and are counted and
  * dropped after that. Never throws on a reading.
  */
-import type { Aggregate } from '@stillwell/protocol';
+import { type Aggregate, type Site, wrapOf } from '@stillwell/protocol';
 import { aggregateTick, latestValue, type TickReadings } from './aggregate.ts';
 
 /** How readings are laid on ticks. */
@@ -321,4 +321,11 @@ export class Aligner {
         this.#counters[c] = latestValue(readings);
     }
   }
+}
+
+/** For the channels of a site, as its file has them aggregated. */
+export function alignerOf(site: Site): Aligner {
+  const channels = [...site.signals, ...site.inputs];
+  const aggregates = channels.map((channel) => channel.aggregate);
+  return new Aligner({ tickMs: site.tickMs, latenessMs: site.latenessMs, aggregates, wraps: channels.map(wrapOf) });
 }

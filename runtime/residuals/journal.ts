@@ -7,7 +7,6 @@
  * A disk that fails (full, read-only, worn) never stops the forecasts: segments are held in memory, a few of them, and the
  * whole boundary is tried again. A file that failed to sync is never trusted again.
  */
-import { join } from 'node:path';
 import { MAX_INDEX, MAX_SEGMENT_BYTES, PLAIN_SEGMENT_FORMAT, SegmentWriter } from '@stillwell/protocol';
 import type { Model } from '@stillwell/runtime/filter';
 import { type Disk, replaceOn, sweepParts } from '../disk.ts';
@@ -15,6 +14,7 @@ import type { LateChange, OpenReadings } from '../ingest/align.ts';
 import type { ResolutionBudget } from './budget.ts';
 import { type Checkpoint, encodeCheckpoint } from './checkpoint.ts';
 import { type JournalCounts, NOTHING_COUNTED } from './journal-counts.ts';
+import { checkpointPath, journalFolder, journalPath } from './journal-files.ts';
 import type { Recorded } from './recorded.ts';
 import type { Spool } from './spool.ts';
 import { startWal, Wal } from './wal.ts';
@@ -71,21 +71,6 @@ const KEYED_EVERY_WAITING = 24;
 const HELD_IN_MEMORY = 8;
 /** Of a segment, about, without start and readings. */
 const HEAD_BYTES = 110;
-
-/** Path of the checkpoint in a data folder. */
-export function checkpointPath(folder: string): string {
-  return join(folder, 'checkpoint');
-}
-
-/** Folder of the journal files in a data folder. */
-export function journalFolder(folder: string): string {
-  return join(folder, 'journal');
-}
-
-/** Path of the journal file of a segment. */
-export function journalPath(folder: string, number: number): string {
-  return join(journalFolder(folder), `${String(number).padStart(10, '0')}.swj`);
-}
 
 /** See the file head. */
 export class Journal {

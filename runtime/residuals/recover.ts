@@ -4,7 +4,8 @@ import { join } from 'node:path';
 import { type Disk, replaceOn } from '../disk.ts';
 import { RuntimeError } from '../errors.ts';
 import { type Checkpoint, decodeCheckpoint } from './checkpoint.ts';
-import { checkpointPath, journalFolder, journalPath, type KeptJournal } from './journal.ts';
+import type { KeptJournal } from './journal.ts';
+import { checkpointPath, journalFolder, journalPath } from './journal-files.ts';
 import { readWal, type WalRecord } from './wal.ts';
 
 /** Who writes into a data folder. */

@@ -7,7 +7,7 @@ import type { Site } from '@stillwell/protocol';
 import type { BundleKeeper } from '../bundle/change.ts';
 import type { Disk } from '../disk.ts';
 import { RuntimeError } from '../errors.ts';
-import type { OpenReadings } from '../ingest/align.ts';
+import type { Aligner, OpenReadings } from '../ingest/align.ts';
 import { Serving } from '../serving.ts';
 import { budgetOf } from './budget.ts';
 import type { Checkpoint } from './checkpoint.ts';
@@ -15,7 +15,7 @@ import { Journal } from './journal.ts';
 import { isLayoutOf, PlainRecord } from './plain-record.ts';
 import { type Identity, openIdentity, type Recovered, recover, renewIdentity } from './recover.ts';
 import { Spool } from './spool.ts';
-import { eachReading } from './wal.ts';
+import { eachReading, type WalRecord } from './wal.ts';
 
 /** What a record is opened with. */
 export interface RecordOptions {
@@ -157,4 +157,12 @@ function channelsInSite({ layout }: PlainRecord, site: Site): readonly number[] 
 
 function noReadings(): OpenReadings {
   return { marks: { newestMs: Number.NEGATIVE_INFINITY, counters: [], latest: [] }, visit: () => {} };
+}
+
+/** Brings an aligner to what it knew when a frame of the journal was written. */
+export function alignFrame(aligner: Aligner, record: WalRecord): void {
+  if (record.kind === 'start') aligner.restore(record.marks);
+  else if (record.kind === 'tick') aligner.replayClose(record.tick);
+  else if (record.kind === 'readings')
+    eachReading(record, (channel, timeMs, value) => aligner.replay(channel, timeMs, value));
 }
