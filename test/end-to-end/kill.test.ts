@@ -41,6 +41,7 @@ const SITE_TEXT = `site: killed
 class: test
 time_zone: UTC
 tick: 1s
+residual_budget: 100000000
 horizon: 24
 lateness: 2s
 ${NAMES.map(

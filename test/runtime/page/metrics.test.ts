@@ -69,7 +69,10 @@ test('before a bundle and after one, every line obeys the format and says what i
     1,
   );
   expect(sampleValue(text, 'stillwell_connected')).toBe(1);
-  expect(sampleValue(text, 'stillwell_loop_delay_seconds_count')).toBeGreaterThan(0);
+  // The loop's pulse comes every half second.
+  await expect
+    .poll(async () => sampleValue(await metricsOf(stage!.url), 'stillwell_loop_delay_seconds_count'), { timeout: 5000 })
+    .toBeGreaterThan(0);
   expect(sampleValue(text, 'process_resident_memory_bytes')).toBeGreaterThan(1e6);
 });
 
