@@ -47,28 +47,3 @@ export function ownNames(host: string, machine: string, isLocal: boolean): Reado
   const own = machine.toLowerCase();
   return new Set(['localhost', ...(isLocal ? [] : [host.toLowerCase(), own, `${own}.local`])]);
 }
-
-/** Requests at a steady rate with some to spare, so that a flood costs the loop little more than its refusals. */
-export class RequestBudget {
-  readonly #perSecond: number;
-  readonly #most: number;
-  #left: number;
-  #at: number;
-
-  /** most  requests in one go; nowMs  of a clock that never steps back */
-  constructor(perSecond: number, most: number, nowMs: number) {
-    this.#perSecond = perSecond;
-    this.#most = most;
-    this.#left = most;
-    this.#at = nowMs;
-  }
-
-  /** Whether one more may be answered now. */
-  take(nowMs: number): boolean {
-    this.#left = Math.min(this.#most, this.#left + ((nowMs - this.#at) / 1000) * this.#perSecond);
-    this.#at = nowMs;
-    if (this.#left < 1) return false;
-    this.#left--;
-    return true;
-  }
-}

@@ -6,8 +6,9 @@ import { createServer, type IncomingMessage, type Server, type ServerResponse } 
 import type { AddressInfo } from 'node:net';
 import { hostname } from 'node:os';
 import type { Clock } from '../clock.ts';
+import { type Allowance, TokenBucket } from '../token-bucket.ts';
 import { isLoopback, type PageAddress } from './address.ts';
-import { ownNames, RequestBudget, refusalOf } from './guard.ts';
+import { ownNames, refusalOf } from './guard.ts';
 import { MOST_VIEWERS } from './viewers.ts';
 
 /** What is answered on a path. */
@@ -23,15 +24,15 @@ export type Routes = ReadonlyMap<string, (request: IncomingMessage, response: Se
 
 /** What the server may take; tests choose less. */
 export interface ServerLimits {
-  readonly requestsPerSecond: number;
-  readonly requestsAtOnce: number;
+  /** Answered, so that a flood costs the loop little more than its refusals. */
+  readonly requests: Allowance;
   /** Until the header has come, ms. */
   readonly headerMs: number;
   /** Until an answer is taken, ms; viewers excepted. */
   readonly answerMs: number;
 }
 
-const LIMITS: ServerLimits = { requestsPerSecond: 20, requestsAtOnce: 60, headerMs: 5000, answerMs: 15_000 };
+const LIMITS: ServerLimits = { requests: { burst: 60, perSecond: 20 }, headerMs: 5000, answerMs: 15_000 };
 /** Browsers open up to six each. */
 const MOST_CONNECTIONS = MOST_VIEWERS + 24;
 const MOST_HEADER_BYTES = 8192;
@@ -57,15 +58,15 @@ export class PageServer {
   readonly #routes: Routes;
   readonly #clock: Clock;
   readonly #limits: ServerLimits;
-  readonly #budget: RequestBudget;
+  readonly #requests: TokenBucket;
   readonly #names: ReadonlySet<string>;
 
   constructor(address: PageAddress, routes: Routes, clock: Clock, limits: Partial<ServerLimits> = {}) {
     this.#routes = routes;
     this.#clock = clock;
     this.#limits = { ...LIMITS, ...limits };
-    const { requestsPerSecond, requestsAtOnce, headerMs } = this.#limits;
-    this.#budget = new RequestBudget(requestsPerSecond, requestsAtOnce, clock.monotonic());
+    const { requests, headerMs } = this.#limits;
+    this.#requests = new TokenBucket(requests, clock.monotonic());
     this.#names = ownNames(address.host, hostname(), isLoopback(address.host));
     this.#server = createServer(
       {
@@ -106,7 +107,7 @@ export class PageServer {
   }
 
   #answer(request: IncomingMessage, response: ServerResponse): void {
-    if (!this.#budget.take(this.#clock.monotonic())) {
+    if (!this.#requests.take(this.#clock.monotonic())) {
       const text = 'Too many requests: a few a second are answered.';
       this.#send(request, response, { status: 429, type: PLAIN, body: text, headers: { 'Retry-After': '1' } }, true);
       return;

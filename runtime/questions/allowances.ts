@@ -3,7 +3,7 @@
  * protects the gateway are the buckets for all of them: of questions read at all, of answers, and of refusals, which cost
  * little but must not become a flood of ours.
  */
-import { type Allowance, TokenBucket } from './token-bucket.ts';
+import { type Allowance, TokenBucket } from '../token-bucket.ts';
 
 /** Questions of one asker. */
 const ASKER: Allowance = { burst: 10, perSecond: 0.5 };

@@ -3,7 +3,7 @@ import { connect, type Socket } from 'node:net';
 import { afterEach, expect, test } from 'vitest';
 import { systemClock } from '../../../runtime/clock.ts';
 import { isLoopback, parsePageAddress } from '../../../runtime/page/address.ts';
-import { ownNames, RequestBudget, refusalOf } from '../../../runtime/page/guard.ts';
+import { ownNames, refusalOf } from '../../../runtime/page/guard.ts';
 import { Page } from '../../../runtime/page/page.ts';
 import { PageServer } from '../../../runtime/page/server.ts';
 import { freePort } from '../../support/broker.ts';
@@ -85,15 +85,8 @@ test('hosts: addresses and own names only, so that no foreign name leads here', 
   expect(status('localhost', local, { 'transfer-encoding': 'chunked' })).toBe(400);
 });
 
-test('a budget gives what was saved up, then its rate', () => {
-  const budget = new RequestBudget(2, 3, 0);
-  expect([0, 0, 0, 0].map((at) => budget.take(at))).toEqual([true, true, true, false]);
-  expect([400, 500, 999, 1000].map((at) => budget.take(at))).toEqual([false, true, false, true]);
-  expect([1e9, 1e9, 1e9, 1e9].map((at) => budget.take(at))).toEqual([true, true, true, false]);
-});
-
 test('every answer forbids what it does not need; only GET and HEAD are answered', async () => {
-  stage = await openStage({ data: testFolder(), limits: { requestsAtOnce: 1000 } });
+  stage = await openStage({ data: testFolder(), limits: { requests: { burst: 1000, perSecond: 20 } } });
   const types = {
     '': 'text/html',
     'state.json': 'application/json',
@@ -166,7 +159,7 @@ test('a foreign name, a body, a flood of headers, a header that never ends, nons
 });
 
 test('more requests than the budget are refused, then it goes on', async () => {
-  stage = await openStage({ data: testFolder(), limits: { requestsAtOnce: 5, requestsPerSecond: 10 } });
+  stage = await openStage({ data: testFolder(), limits: { requests: { burst: 5, perSecond: 10 } } });
   const statuses = await Promise.all(Array.from({ length: 12 }, async () => (await fetch(stage!.url)).status));
   expect(statuses.filter((status) => status === 200).length).toBeGreaterThanOrEqual(5);
   expect(statuses).toContain(429);

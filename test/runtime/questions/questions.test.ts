@@ -7,7 +7,6 @@ import type { Outgoing } from '../../../runtime/mqtt/connection.ts';
 import { Allowances } from '../../../runtime/questions/allowances.ts';
 import { Questions } from '../../../runtime/questions/questions.ts';
 import { responseTopicFault } from '../../../runtime/questions/response-topic.ts';
-import { TokenBucket } from '../../../runtime/questions/token-bucket.ts';
 import { Serving } from '../../../runtime/serving.ts';
 import { syntheticBundle } from '../../support/models.ts';
 import { SITE_TEXT } from '../../support/running-site.ts';
@@ -145,21 +144,6 @@ describe('how often', () => {
     clock.ms += 60_000;
     questions.take(asking('b'), PLAIN);
     expect(questions.answered).toBe(11);
-  });
-
-  test('a bucket fills with time and never beyond its size', () => {
-    const bucket = new TokenBucket({ burst: 2, perSecond: 0.5 }, 0);
-    expect([0, 0, 0, 1999, 2000, 2000, 1e9, 1e9, 1e9].map((ms) => bucket.take(ms))).toEqual([
-      true,
-      true,
-      false,
-      false,
-      true,
-      false,
-      true,
-      true,
-      false,
-    ]);
   });
 
   test('a hundred thousand askers are remembered by 64 places, the busy among them', () => {

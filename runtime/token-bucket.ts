@@ -1,4 +1,4 @@
-/** So many at once, and so many a second: how often somebody may ask. Time is the caller's. */
+/** So many at once, and so many a second: how often something may be asked for. Time is the caller's. */
 
 /** How many at once, and how many a second. */
 export interface Allowance {
