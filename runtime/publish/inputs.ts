@@ -1,5 +1,5 @@
 /** What a tick's forecasts made of the inputs ahead: planned or not, by how old a plan, and how true plans have been. */
-import type { InputOutlook, InputUse, Site } from '@stillwell/protocol';
+import type { InputOutlook, InputUse, Plan, Site } from '@stillwell/protocol';
 import type { Model } from '@stillwell/runtime/filter';
 import type { PlanKeeper } from '../ingest/plans.ts';
 import type { Serving } from '../serving.ts';
@@ -14,7 +14,7 @@ export function inputOutlooks(serving: Serving, plans: PlanKeeper, site: Site, n
     return {
       input: name,
       unit,
-      use: useOf(serving, site, ruling === null ? null : ruling.plan.timesMs[0]!, u),
+      use: useOf(serving, ruling?.plan ?? null, u),
       planAgeMs: ruling === null || Number.isNaN(ruling.madeAtMs) ? null : Math.max(0, nowMs - ruling.madeAtMs),
       planUntilMs: ruling === null ? null : ruling.plan.endMs,
       planError: error === null ? null : short(error),
@@ -47,10 +47,10 @@ function reaches(model: Model, input: number): boolean {
   return model.kind === 'driven' || (model.response?.inputs.includes(input) ?? false);
 }
 
-function useOf(serving: Serving, site: Site, planFromMs: number | null, input: number): InputUse {
-  const { model, tick } = serving;
-  const endMs = (tick + model.horizon + 1) * site.tickMs;
-  if (planFromMs !== null && planFromMs < endMs && reaches(model, input)) return 'planned';
+/** What a forecast makes of an input under a plan, or under none. */
+export function useOf({ model, tick }: Serving, plan: Plan | null, input: number): InputUse {
+  const endMs = (tick + model.horizon + 1) * model.tickMs;
+  if (plan !== null && plan.timesMs[0]! < endMs && reaches(model, input)) return 'planned';
   // Every kind but the driven one learned what the past says of its inputs; that one leads their last values on by itself.
   return model.kind === 'driven' ? 'held' : 'expected';
 }

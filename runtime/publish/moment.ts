@@ -6,6 +6,7 @@
  */
 import type { InputOutlook, MessageHead, Site } from '@stillwell/protocol';
 import type { PlanKeeper } from '../ingest/plans.ts';
+import type { Outgoing } from '../mqtt/connection.ts';
 import type { Serving } from '../serving.ts';
 import { planFault } from './inputs.ts';
 import { judge } from './quality.ts';
@@ -27,6 +28,16 @@ export interface Occasion {
 export function validUntil(tick: number, site: Site): number {
   const successorDueMs = (tick + 2) * site.tickMs + site.latenessMs;
   return successorDueMs + GRACE_TICKS * site.tickMs;
+}
+
+/** How long a broker keeps a message; of event time, which is not its own, it knows nothing. */
+export function expiryOf(
+  isWallTime: boolean,
+  validUntilMs: number,
+  issuedAtMs: number,
+): Pick<Outgoing, 'expirySeconds'> {
+  const leftMs = validUntilMs - issuedAtMs;
+  return isWallTime && leftMs > 0 ? { expirySeconds: leftMs / 1000 } : {};
 }
 
 /** The common part of a tick's messages, judged for one signal or for all. */

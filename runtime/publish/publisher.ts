@@ -14,7 +14,7 @@ import { writeStatus } from '../status.ts';
 import { forecastPayload, forecastsPayload } from './forecasts.ts';
 import { type HealthReport, healthPayload, willPayload } from './health.ts';
 import { inputOutlooks } from './inputs.ts';
-import { type Occasion, validUntil } from './moment.ts';
+import { expiryOf, type Occasion, validUntil } from './moment.ts';
 import { type Outlook, outlooksOf } from './outlooks.ts';
 import { statePayload } from './state.ts';
 import { type OpenNow, Warnings } from './warnings.ts';
@@ -111,10 +111,8 @@ export class Publisher {
     this.#warnings.tick(serving, occasion, outlooks);
     if (!this.#isReady) return null;
     const forecasts = this.#forecasts(serving, lastReadingMs, occasion, outlooks);
-    // In event time the broker's clock knows nothing of the message's.
-    const leftMs = clock === 'wall' ? validUntil(serving.tick, site) - issuedAtMs : Number.NaN;
+    const expiry = expiryOf(clock === 'wall', validUntil(serving.tick, site), issuedAtMs);
     const send = (topic: string, payload: Uint8Array, contentType: string): void => {
-      const expiry = leftMs > 0 ? { expirySeconds: leftMs / 1000 } : {};
       this.#send({ topic, payload, qos: 0, retain: true, contentType, ...expiry });
     };
     for (const [i, payload] of forecasts.entries())

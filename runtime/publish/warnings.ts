@@ -12,7 +12,7 @@ import type { Disk } from '../disk.ts';
 import type { Log } from '../log.ts';
 import type { Outgoing } from '../mqtt/connection.ts';
 import type { Serving } from '../serving.ts';
-import { headOf, type Occasion, validUntil } from './moment.ts';
+import { expiryOf, headOf, type Occasion, validUntil } from './moment.ts';
 import type { Outlook } from './outlooks.ts';
 import { judge, STALE_TICKS } from './quality.ts';
 import { keepWarnings, keptWarnings } from './warnings-memory.ts';
@@ -29,7 +29,7 @@ export interface WarningPorts {
   readonly disk: Disk;
   readonly folder: string;
   readonly log: Log;
-  /** Whether times are the wall clock's: of event time a broker, who drops what has expired, knows nothing. */
+  /** Whether times are the wall clock's. */
   readonly isWallTime: boolean;
   /** Whether the broker takes something now. */
   readonly isReady: () => boolean;
@@ -140,8 +140,7 @@ export class Warnings {
     const topic = topics.warning(name);
     this.#toBlank.delete(topic);
     const isOpen = one.openCount > 0;
-    const leftMs = isWallTime ? validUntilMs - issuedAtMs : Number.NaN;
-    const expiry = leftMs > 0 ? { expirySeconds: leftMs / 1000 } : {};
+    const expiry = expiryOf(isWallTime, validUntilMs, issuedAtMs);
     const said = publish({ topic, payload, qos: 1, retain: isOpen, contentType: JSON_TYPE, ...expiry });
     const blanked = isOpen ? null : publish({ topic, payload: NOTHING, qos: 1, retain: true });
     Promise.all([said, blanked]).then(

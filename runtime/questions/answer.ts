@@ -10,12 +10,12 @@ import {
   type AnswerTo,
   answerMessage,
   type InputOutlook,
-  type Plan,
   type Quality,
   type Question,
 } from '@stillwell/protocol';
 import { planAtTick } from '../ingest/plan-ticks.ts';
 import { limitOutlook, rounding } from '../publish/forecasts.ts';
+import { useOf } from '../publish/inputs.ts';
 import { headOf, type Occasion } from '../publish/moment.ts';
 import { type Outlook, outlooksOf } from '../publish/outlooks.ts';
 import type { Paths, Serving } from '../serving.ts';
@@ -76,10 +76,9 @@ export class Answerer {
       const asked = plans.find(({ input }) => input === u);
       if (asked === undefined) return outlook;
       const { plan } = asked;
-      const isUsed = plan !== null && reaches(serving, plan, u);
       return {
         ...outlook,
-        use: isUsed ? 'planned' : serving.model.kind === 'driven' ? 'held' : 'expected',
+        use: useOf(serving, plan, u),
         planAgeMs: plan === null ? null : Math.max(0, issuedAtMs - (plan.issuedAtMs ?? issuedAtMs)),
         planUntilMs: plan?.endMs ?? null,
         planError: null,
@@ -104,12 +103,6 @@ function pathsOf(length: number): Paths {
   return { median: new Float64Array(length), lower: new Float64Array(length), upper: new Float64Array(length) };
 }
 
-/** Whether the model listens to such a plan within its horizon. */
-function reaches({ model, tick }: Serving, plan: Plan, input: number): boolean {
-  if (plan.timesMs[0]! >= (tick + model.horizon + 1) * model.tickMs) return false;
-  return model.kind === 'driven' || (model.response?.inputs.includes(input) ?? false);
-}
-
 /** Puts the plans asked about into `plan`, (nu × H) standardised, in place of what stands there. */
 function lay({ model, tick }: Serving, { site }: Occasion, { plans }: Question, plan: Float64Array): void {
   const H = model.horizon;
@@ -127,7 +120,7 @@ function lay({ model, tick }: Serving, { site }: Occasion, { plans }: Question, 
 function trainedRangeFault(serving: Serving, { site }: Occasion, { plans, steps }: Question): string | null {
   const { model, tick } = serving;
   for (const { input, plan } of plans) {
-    if (plan === null || !reaches(serving, plan, input)) continue;
+    if (plan === null || useOf(serving, plan, input) !== 'planned') continue;
     const { name, unit, aggregate } = site.inputs[input]!;
     const low = model.clipLow[model.signalCount + input]!;
     const high = model.clipHigh[model.signalCount + input]!;
