@@ -4,6 +4,7 @@ import type { Clock } from '../clock.ts';
 import type { Gateway } from '../gateway.ts';
 import { inputOutlooks, planFault } from '../publish/inputs.ts';
 import { judge } from '../publish/quality.ts';
+import { decimalsOf } from '../residuals/decimals.ts';
 import type { Waiting } from '../residuals/spool.ts';
 import { CLOCK_UNSET_MS } from '../steady-clock.ts';
 import { VERSION } from '../version.ts';
@@ -21,7 +22,7 @@ export function siteFacts(gateway: Gateway): SiteFacts {
   const channel = (one: Signal, c: number): ChannelFacts => ({
     name: one.name,
     unit: one.unit,
-    decimals: decimalsOf(bundle?.channels[c]?.lattice.step ?? one.resolution),
+    decimals: decimalsShown(bundle?.channels[c]?.lattice.step ?? one.resolution),
     limits: one.limits,
   });
   return {
@@ -40,13 +41,10 @@ export function siteFacts(gateway: Gateway): SiteFacts {
 }
 
 /** Decimals in which a sensor's step shows; null where the step is not known. */
-export function decimalsOf(step: number | null): number | null {
-  if (step === null || !(step > 0)) return null;
-  for (let decimals = 0; decimals < MOST_DECIMALS; decimals++) {
-    const scaled = step * 10 ** decimals;
-    if (Math.abs(scaled - Math.round(scaled)) < 1e-9 * scaled && Math.round(scaled) > 0) return decimals;
-  }
-  return MOST_DECIMALS;
+export function decimalsShown(step: number | null): number | null {
+  if (step === null) return null;
+  const decimals = decimalsOf(step);
+  return decimals < 0 ? MOST_DECIMALS : Math.min(MOST_DECIMALS, decimals);
 }
 
 /** How each signal is, judged as its forecasts are. */

@@ -1,16 +1,9 @@
 /** The connection to the broker, as it has been told of. */
 import type { ConnectionEvent } from '../mqtt/connection.ts';
+import type { GatewayFacts } from './told.ts';
 
 /** What is said of it. */
-export interface LinkFacts {
-  readonly connected: boolean;
-  /** Seconds of the present state, connected or not. */
-  readonly for_s: number;
-  /** `5` or `3.1.1`; null before the first connection. */
-  readonly protocol: string | null;
-  /** Why it was lost or refused last; null: never. */
-  readonly reason: string | null;
-}
+export type LinkFacts = Omit<GatewayFacts['link'], 'reconnects'>;
 
 /** See the file head. */
 export class Link {

@@ -55,8 +55,8 @@ export class Page implements Watcher {
   #all: { readonly bytes: Uint8Array; readonly atMs: number } | null = null;
   #pulsedAtMs: number;
   #saidAtMs = Number.NEGATIVE_INFINITY;
-  #toldTick = -1;
-  #toldBundle = '';
+  /** The newest tick that viewers know, and by which bundle. */
+  #told: { readonly tick: number; readonly sequence: number | null } = { tick: -1, sequence: null };
   #isUpdateDue = false;
   #fault = '';
   #server: PageServer | null = null;
@@ -162,18 +162,19 @@ export class Page implements Watcher {
   #update(): void {
     if (this.#viewers.count === 0 || this.#isClosed) return;
     const now = this.#ports.clock.monotonic();
-    const { recent, serving } = this.#gateway.engine;
-    const newest = recent.firstTick + recent.count - 1;
-    const bundle = serving === null ? '' : String(serving.checked.sequence);
-    const isSmall = bundle === this.#toldBundle && newest - this.#toldTick <= MOST_NEWS_TICKS;
-    const since = this.#toldTick;
+    const since = this.#told;
+    this.#told = this.#tellable();
+    const isSmall = this.#told.sequence === since.sequence && this.#told.tick - since.tick <= MOST_NEWS_TICKS;
     this.#saidAtMs = now;
-    this.#toldTick = newest;
-    this.#toldBundle = bundle;
     this.#all = null;
     const all = (): Uint8Array => this.#everything(now);
-    const news = isSmall ? event('tick', this.#writer.news(this.#made(), since)) : all();
+    const news = isSmall ? event('tick', this.#writer.news(this.#made(), since.tick)) : all();
     this.#viewers.send({ news, all }, now);
+  }
+
+  #tellable(): { readonly tick: number; readonly sequence: number | null } {
+    const { recent, serving } = this.#gateway.engine;
+    return { tick: recent.firstTick + recent.count - 1, sequence: serving?.checked.sequence ?? null };
   }
 
   #made(): readonly Uint8Array[] {
@@ -209,11 +210,7 @@ export class Page implements Watcher {
   #follow(request: IncomingMessage, response: ServerResponse): Answer | null {
     if (request.method === 'HEAD') return { status: 200, type: 'text/event-stream; charset=utf-8', body: '' };
     const now = this.#ports.clock.monotonic();
-    if (this.#viewers.count === 0) {
-      const { recent, serving } = this.#gateway.engine;
-      this.#toldTick = recent.firstTick + recent.count - 1;
-      this.#toldBundle = serving === null ? '' : String(serving.checked.sequence);
-    }
+    if (this.#viewers.count === 0) this.#told = this.#tellable();
     this.#viewers.add(response, this.#everything(now), now);
     return null;
   }

@@ -65,8 +65,10 @@ export interface GatewayFacts {
     readonly connected: boolean;
     /** Seconds of the present state, connected or not. */
     readonly for_s: number;
+    /** `5` or `3.1.1`; null before the first connection. */
     readonly protocol: string | null;
     readonly reconnects: number;
+    /** Why it was lost or refused last; null: never. */
     readonly reason: string | null;
   };
   readonly spool: {

@@ -4,7 +4,7 @@ import { createHash } from 'node:crypto';
 import { expect, test } from 'vitest';
 import { RecentTicks } from '../../../runtime/ingest/recent.ts';
 import { pageDocument } from '../../../runtime/page/document.ts';
-import { decimalsOf } from '../../../runtime/page/facts.ts';
+import { decimalsShown } from '../../../runtime/page/facts.ts';
 import { Link } from '../../../runtime/page/link.ts';
 import { LoopDelay } from '../../../runtime/page/loop-delay.ts';
 import { pastReadings, roundTo } from '../../../runtime/page/past.ts';
@@ -117,7 +117,17 @@ test('link: how long it has been so, and why it was lost', () => {
 });
 
 test('decimals of a sensor, and rounding to one more', () => {
-  expect([1, 0.5, 0.1, 0.25, 0.005, 10, 1e-9, null, 0.1 + 0.2].map(decimalsOf)).toEqual([0, 1, 1, 2, 3, 0, 6, null, 1]);
+  expect([1, 0.5, 0.1, 0.25, 0.005, 10, 1e-9, null, 0.1 + 0.2].map(decimalsShown)).toEqual([
+    0,
+    1,
+    1,
+    2,
+    3,
+    0,
+    6,
+    null,
+    1,
+  ]);
   expect([roundTo(1.23456, 2), roundTo(-1.23456, 0), roundTo(123456.789, null), roundTo(1e300, 6)]).toEqual([
     ...[1.235, -1.2, 123456.8],
     1e300,
