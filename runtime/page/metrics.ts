@@ -23,8 +23,14 @@ export interface MetricsSource {
 
 const LETTERS = ['good', 'F', 'C', 'S', 'M'] as const;
 const NONE = {} as const;
-/** Counts of health that may fall, or are said better elsewhere. */
-const NOT_COUNTERS = new Set(['segments_open', 'segments_waiting', 'spool_bytes', 'warnings_open']);
+/** Of what health counts, what is said better elsewhere. */
+const SAID_ELSEWHERE = new Set(['segments_open', 'segments_waiting', 'spool_bytes', 'warnings_open']);
+/** What may fall again, so that it is no counter. */
+const GAUGES: ReadonlyMap<string, string> = new Map([
+  ['segment_bytes_a_day', 'Bytes of segments a day, as projected.'],
+  ['budget_exceeded', '1 while segments cost more than the residual budget.'],
+  ['resolution_shed', 'Steps of the sensor to one of the record, of signals and inputs kept coarser.'],
+]);
 const COUNTER_NAME = /^[a-z][a-z0-9_]*$/;
 
 /** The text of `/metrics`. */
@@ -68,16 +74,18 @@ function gateway(out: Exposition, { facts, gateway }: MetricsSource, health: Hea
 }
 
 /** Whatever health counts, also what later versions add. */
-function counters(out: Exposition, { counters: counts }: HealthMessage): void {
+export function counters(out: Exposition, { counters: counts }: HealthMessage): void {
   for (const [name, count] of Object.entries(counts)) {
-    if (NOT_COUNTERS.has(name) || !COUNTER_NAME.test(name)) continue;
-    const family = { name: `stillwell_${name}`, help: `${name.replaceAll('_', ' ')}, since the start.` };
-    if (typeof count === 'number') out.counter(family, [[NONE, count]]);
-    else
-      out.counter(
-        family,
-        Object.entries(count).map(([cause, n]): Sample => [{ cause }, n]),
-      );
+    if (SAID_ELSEWHERE.has(name) || !COUNTER_NAME.test(name)) continue;
+    const gauge = GAUGES.get(name);
+    const family = { name: `stillwell_${name}`, help: gauge ?? `${name.replaceAll('_', ' ')}, since the start.` };
+    const label = gauge === undefined ? 'cause' : 'signal';
+    const samples =
+      typeof count === 'number'
+        ? [[NONE, count] as const]
+        : Object.entries(count).map(([key, n]): Sample => [{ [label]: key }, n]);
+    if (gauge === undefined) out.counter(family, samples);
+    else out.gauge(family, samples);
   }
 }
 

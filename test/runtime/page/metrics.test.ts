@@ -1,8 +1,9 @@
 /** /metrics as OpenMetrics text: our writer against a checker, and that checker against the reference parser. */
 import { spawnSync } from 'node:child_process';
+import type { HealthMessage } from '@stillwell/protocol';
 import { afterEach, expect, test } from 'vitest';
 import { Exposition } from '../../../runtime/page/exposition.ts';
-import { METRICS_TYPE } from '../../../runtime/page/metrics.ts';
+import { counters, METRICS_TYPE } from '../../../runtime/page/metrics.ts';
 import { testFolder } from '../../support/folder.ts';
 import { parseOpenMetrics } from '../../support/openmetrics.ts';
 import { openStage, type PageStage } from '../../support/page-stage.ts';
@@ -91,6 +92,31 @@ test('counters never fall from one answer to the next', async () => {
   const after = new Map(counters(await metricsOf(stage.url)));
   expect(before.size).toBeGreaterThan(10);
   for (const [key, value] of before) expect(after.get(key), key).toBeGreaterThanOrEqual(value);
+});
+
+test('what may fall again is a gauge, by signal where health has it so', () => {
+  const out = new Exposition();
+  const counts = {
+    ticks: 9,
+    segment_bytes_a_day: 1200,
+    budget_exceeded: 0,
+    resolution_shed: { level: 4 },
+    refused: { syntax: 2 },
+  };
+  counters(out, { counters: counts } as unknown as HealthMessage);
+  const families = parseOpenMetrics(out.end()).map(({ type, samples }) => [
+    type,
+    samples[0]!.name,
+    samples[0]!.labels,
+    samples[0]!.value,
+  ]);
+  expect(families).toEqual([
+    ['counter', 'stillwell_ticks_total', {}, 9],
+    ['gauge', 'stillwell_segment_bytes_a_day', {}, 1200],
+    ['gauge', 'stillwell_budget_exceeded', {}, 0],
+    ['gauge', 'stillwell_resolution_shed', { signal: 'level' }, 4],
+    ['counter', 'stillwell_refused_total', { cause: 'syntax' }, 2],
+  ]);
 });
 
 const FAULTS: readonly (readonly [string, string])[] = [
